@@ -1,0 +1,1 @@
+"""The service: documents in, durable runs, answers out."""

@@ -1,0 +1,1 @@
+"""The numerical library: problems in, curves with their evidence out.  Knows nothing of JSON, HTTP or files."""

@@ -1,0 +1,1 @@
+"""Independent tests of a result; one module per check."""

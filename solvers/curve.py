@@ -1,0 +1,43 @@
+"""The exact curve: piecewise polynomials in Legendre form, ready to be evaluated anywhere without the solver."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.polynomial import legendre
+from numpy.typing import NDArray
+
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True, slots=True)
+class Curve:
+    """Functions of the independent variable on one mesh.
+
+    `breaks` (n + 1 increasing places) bound n intervals.  `functions` maps a name with primes (`y`, `y'`, `u`) to n
+    arrays of Legendre coefficients, lowest degree first, in the local variable that runs from -1 to 1 over its
+    interval.  An interval of width zero cannot occur.
+    """
+
+    breaks: Array
+    functions: Mapping[str, tuple[Array, ...]]
+
+    def evaluate(self, name: str, places: Array, derivative: int = 0) -> Array:
+        """Values of `name` (or of its derivative) at `places`; at a break the interval on its left speaks.
+
+        Places beyond the ends are continued from the outermost interval.
+        """
+        places = np.asarray(places, dtype=float)
+        owner = np.clip(np.searchsorted(self.breaks, places, side="left") - 1, 0, len(self.breaks) - 2)
+        values = np.empty_like(places)
+        for interval in np.unique(owner):
+            inside = owner == interval
+            left, right = self.breaks[interval], self.breaks[interval + 1]
+            local = (2 * places[inside] - left - right) / (right - left)
+            coefficients = self.functions[name][interval]
+            if derivative:
+                coefficients = legendre.legder(coefficients, derivative) * (2 / (right - left)) ** derivative
+            values[inside] = legendre.legval(local, coefficients)
+        return values

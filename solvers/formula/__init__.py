@@ -1,0 +1,1 @@
+"""Formulas as on paper: text to tree and back, without any numerical library."""

@@ -1,0 +1,137 @@
+"""The syntax tree of a formula: frozen records that keep the user's order, each with its place in the text."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+
+FUNCTIONS: dict[str, int] = {
+    "sqrt": 1, "exp": 1, "log": 1, "sin": 1, "cos": 1, "tan": 1, "asin": 1, "acos": 1, "atan": 1, "atan2": 2,
+    "sinh": 1, "cosh": 1, "tanh": 1, "abs": 1, "min": 2, "max": 2, "hypot": 2, "sign": 1,
+}  # fmt: skip
+"""Built-in functions and how many arguments they take (`min` and `max` take two or more)."""
+
+
+@dataclass(frozen=True, slots=True)
+class Span:
+    """Characters `start` up to, not including, `end` of the formula's text."""
+
+    start: int
+    end: int
+
+
+NOWHERE = Span(0, 0)
+
+
+@dataclass(frozen=True, slots=True)
+class Number:
+    """A literal.  `value` is what computation uses (SI after assembly), `text` what the user wrote."""
+
+    value: float
+    text: str
+    span: Span = NOWHERE
+
+
+@dataclass(frozen=True, slots=True)
+class Name:
+    """A name with its primes: `y` is order 0, `y''` order 2.  `pi` is a name too."""
+
+    name: str
+    order: int = 0
+    span: Span = NOWHERE
+
+
+@dataclass(frozen=True, slots=True)
+class At:
+    """The value of a name at a place: `x'(T)`, `m(t1-)`.  `side` is "", "-" or "+"."""
+
+    name: str
+    order: int
+    place: Node
+    side: str = ""
+    span: Span = NOWHERE
+
+
+@dataclass(frozen=True, slots=True)
+class Call:
+    """A built-in function, `integral`, or (after names are resolved) a table."""
+
+    function: str
+    arguments: tuple[Node, ...]
+    span: Span = NOWHERE
+
+
+@dataclass(frozen=True, slots=True)
+class Negative:
+    """`-operand`."""
+
+    operand: Node
+    span: Span = NOWHERE
+
+
+@dataclass(frozen=True, slots=True)
+class Sum:
+    """`a + b - c`: two or more terms; `minus[i]` says that term i is subtracted (never for the first)."""
+
+    terms: tuple[Node, ...]
+    minus: tuple[bool, ...]
+    span: Span = NOWHERE
+
+
+@dataclass(frozen=True, slots=True)
+class Product:
+    """`a * b / c`, read from left to right; `over[i]` says that factor i divides (never for the first)."""
+
+    factors: tuple[Node, ...]
+    over: tuple[bool, ...]
+    span: Span = NOWHERE
+
+
+@dataclass(frozen=True, slots=True)
+class Power:
+    """`base ^ exponent`; binds tighter than the sign before it and to the right."""
+
+    base: Node
+    exponent: Node
+    span: Span = NOWHERE
+
+
+@dataclass(frozen=True, slots=True)
+class Relation:
+    """`a <= b <= c` or `a = b`: sides and, between them, signs out of "=", "<=", ">="."""
+
+    sides: tuple[Node, ...]
+    signs: tuple[str, ...]
+    span: Span = NOWHERE
+
+
+Node = Number | Name | At | Call | Negative | Sum | Product | Power
+"""An expression: everything but a relation."""
+
+
+def children(node: Node) -> tuple[Node, ...]:
+    """The direct parts of a node, in reading order."""
+    match node:
+        case At(place=place):
+            return (place,)
+        case Call(arguments=arguments):
+            return arguments
+        case Negative(operand=operand):
+            return (operand,)
+        case Sum(terms=terms):
+            return terms
+        case Product(factors=factors):
+            return factors
+        case Power(base=base, exponent=exponent):
+            return (base, exponent)
+        case _:
+            return ()
+
+
+def walk(node: Node) -> Iterator[Node]:
+    """Every node of the tree, parents first."""
+    stack = [node]
+    while stack:
+        node = stack.pop()
+        yield node
+        stack.extend(reversed(children(node)))

@@ -1,0 +1,148 @@
+"""A problem as the solver takes it: names resolved, everything in coherent SI units, orders found.
+
+The trees hold no unit and no text that still needs a meaning: a `Name` is the independent variable, a constant, a
+parameter, an unknown (with `order` primes), an abbreviation of `where`, or `pi`; an `At` names an unknown or an
+abbreviation and its place is one of `Problem.places`.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from enum import Enum
+
+from solvers.formula.nodes import Node
+from solvers.units import PLAIN, Unit
+
+
+class Seek(Enum):
+    """The sort of extremum asked for."""
+
+    MINIMUM = "minimum"
+    MAXIMUM = "maximum"
+    STATIONARY = "stationary"
+
+
+class Role(Enum):
+    """What the dynamics make of an unknown."""
+
+    STATE = "state"  # its derivatives below the highest one are continuous
+    CONTROL = "control"  # order 0: nothing says how it moves
+
+
+@dataclass(frozen=True, slots=True)
+class Constant:
+    """A given number; `tolerance` is one standard deviation, or None."""
+
+    name: str
+    value: float
+    tolerance: float | None = None
+    unit: Unit = PLAIN
+
+
+@dataclass(frozen=True, slots=True)
+class Parameter:
+    """An unknown number with bounds (infinite where open) and, if given, a guess."""
+
+    name: str
+    lower: float = float("-inf")
+    upper: float = float("inf")
+    guess: float | None = None
+    unit: Unit = PLAIN
+
+
+@dataclass(frozen=True, slots=True)
+class Unknown:
+    """An unknown function.  `order` is its highest derivative anywhere; bounds are on the function itself.
+
+    `guess` is a formula in the independent variable, constants and parameters, or points (t, value), or None.
+    """
+
+    name: str
+    order: int
+    lower: float = float("-inf")
+    upper: float = float("inf")
+    guess: Node | tuple[tuple[float, float], ...] | None = None
+    unit: Unit = PLAIN
+
+    @property
+    def role(self) -> Role:
+        """State where it has derivatives, control where it has none."""
+        return Role.STATE if self.order else Role.CONTROL
+
+
+@dataclass(frozen=True, slots=True)
+class Equation:
+    """One line of `dynamics`, left = right.
+
+    `determines` is (name, order) where the line is explicit: the left side is just that highest derivative and the
+    right side is free of it.  Else None, and the line holds as an equality at every point.
+    """
+
+    left: Node
+    right: Node
+    determines: tuple[str, int] | None
+    label: str
+    pointer: str
+
+
+@dataclass(frozen=True, slots=True)
+class Condition:
+    """lower <= body <= upper; equality where both are the same tree.  The limits hold constants and numbers only.
+
+    `label` is the user's text and `pointer` its JSON pointer: one relation may give several conditions.
+    """
+
+    body: Node
+    lower: Node | None
+    upper: Node | None
+    label: str
+    pointer: str
+    unit: Unit = PLAIN
+
+    @property
+    def equality(self) -> bool:
+        """True where the condition is `=`."""
+        return self.lower is not None and self.lower is self.upper
+
+
+@dataclass(frozen=True, slots=True)
+class Place:
+    """A named place of the independent variable: an end, or a place between them that some condition names.
+
+    `tree` is a number or a formula of constants (a fixed place), or the `Name` of a parameter (a free place).
+    """
+
+    tree: Node
+    label: str
+
+
+@dataclass(frozen=True, slots=True)
+class Options:
+    """How far to go.  `tolerance` is relative, for the curve and for the value; `points` limits the mesh."""
+
+    tolerance: float = 1e-6
+    time_limit: float = 60.0
+    starts: int = 1
+    points: int = 20_000
+
+
+@dataclass(frozen=True, slots=True)
+class Problem:
+    """Everything that the solver has to know."""
+
+    independent: str
+    places: tuple[Place, ...]  # in order; the first is `from`, the last is `to`
+    unknowns: tuple[Unknown, ...]
+    seek: Seek = Seek.MINIMUM
+    integrand: Node | None = None
+    endpoint: Node | None = None
+    constants: tuple[Constant, ...] = ()
+    parameters: tuple[Parameter, ...] = ()
+    where: tuple[tuple[str, Node], ...] = ()  # in an order in which each uses only earlier ones
+    dynamics: tuple[Equation, ...] = ()
+    endpoints: tuple[Condition, ...] = ()  # bodies use `At`, parameters, constants
+    constraints: tuple[Condition, ...] = ()  # pointwise: hold everywhere
+    integrals: tuple[Condition, ...] = ()  # bodies hold `Call("integral", ...)`, may hold `At` and parameters too
+    options: Options = field(default_factory=Options)
+    independent_unit: Unit = PLAIN
+    value_unit: Unit = PLAIN

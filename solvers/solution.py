@@ -1,0 +1,140 @@
+"""What a solve leaves behind: the verdict, the value with its bound, the curve, the evidence.  All in SI units."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, field
+from enum import Enum
+
+from solvers.curve import Curve
+
+
+class Verdict(Enum):
+    """What a result may be called, and nothing more than its checks support."""
+
+    GLOBAL_MINIMUM = "global minimum"
+    LOCAL_MINIMUM = "local minimum"
+    GLOBAL_MAXIMUM = "global maximum"
+    LOCAL_MAXIMUM = "local maximum"
+    STATIONARY = "stationary"
+    NOT_A_MINIMUM = "not a minimum"
+    NOT_A_MAXIMUM = "not a maximum"
+    NOT_VERIFIED = "not verified"
+    BEST_FOUND = "best found"
+    INFEASIBLE = "infeasible"
+    NO_OPTIMUM = "no optimum"
+
+
+class Status(Enum):
+    """How a check ended."""
+
+    PASSED = "passed"
+    FAILED = "failed"
+    NOT_APPLICABLE = "not applicable"
+
+
+@dataclass(frozen=True, slots=True)
+class Check:
+    """One independent test of a result.
+
+    `figure` is what was measured and `threshold` what it must not exceed (both relative, so without unit);
+    `place` is where on the independent variable it is worst, `subject` the unknown or condition that it is about.
+    """
+
+    name: str
+    status: Status
+    sentence: str
+    figure: float | None = None
+    threshold: float | None = None
+    place: float | None = None
+    subject: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class Price:
+    """Change of the optimal value per unit by which a condition's limit is raised."""
+
+    label: str
+    pointer: str
+    price: float
+
+
+@dataclass(frozen=True, slots=True)
+class Finding:
+    """One line of a diagnosis: which condition or sub-expression, by how much, where."""
+
+    label: str
+    pointer: str = ""
+    amount: float | None = None
+    place: float | None = None
+    note: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class Diagnosis:
+    """Why there is no (full) result: `reason` is a stable word, `sentence` is for people."""
+
+    reason: str  # "infeasible", "undefined", "out of time", "stopped", "unbounded", "no progress", "points limit"
+    sentence: str
+    findings: tuple[Finding, ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
+class MeshStep:
+    """One mesh of the refinement: its size and what it gave.  `error` is the relative estimate."""
+
+    intervals: int
+    points: int
+    lowest_degree: int
+    highest_degree: int
+    value: float | None
+    error: float | None
+    iterations: int
+    seconds: float
+
+
+@dataclass(frozen=True, slots=True)
+class Progress:
+    """One sign of life.  `kind` is "iteration" or "mesh"; what does not apply is None.
+
+    `value` is the functional in SI, `infeasibility` the largest relative violation, `breaks` the mesh (for "mesh"),
+    `error` the relative error estimate of the mesh just finished.
+    """
+
+    kind: str
+    mesh: int
+    iteration: int
+    intervals: int
+    points: int
+    value: float | None = None
+    infeasibility: float | None = None
+    error: float | None = None
+    breaks: tuple[float, ...] | None = None
+
+
+Watch = Callable[[Progress], bool]
+"""Takes each sign of life; True asks the solver to stop at the next iteration."""
+
+
+@dataclass(frozen=True, slots=True)
+class Solution:
+    """The outcome of `solvers.solve.solve`.
+
+    `curve` holds every unknown with its derivatives up to its order; `costates` has one function per state
+    (named like the state) and one per pointwise condition that binds somewhere (named by its label).
+    """
+
+    verdict: Verdict | None
+    value: float | None = None
+    value_error: float | None = None
+    parameters: Mapping[str, float] = field(default_factory=dict)
+    curve: Curve | None = None
+    curve_error: float | None = None  # relative
+    costates: Curve | None = None
+    prices: tuple[Price, ...] = ()
+    checks: tuple[Check, ...] = ()
+    diagnosis: Diagnosis | None = None
+    meshes: tuple[MeshStep, ...] = ()
+    iterations: int = 0
+    times: Mapping[str, float] = field(default_factory=dict)  # seconds per stage
+    notes: tuple[str, ...] = ()  # what was done that the reader should know: abs smoothed, free ends found, ...
