@@ -1,0 +1,68 @@
+"""Syntax tree -> formula text, with as few parentheses as the grammar needs: read again it gives the same tree."""
+
+from __future__ import annotations
+
+from solvers.formula.nodes import At, Call, Name, Negative, Node, Number, Power, Product, Relation, Sum
+
+SUM, SIGNED, PRODUCT, POWER, ATOM = range(5)
+"""How tightly the parts of a node hold together."""
+
+
+def text(tree: Node | Relation) -> str:
+    """The formula as one would type it."""
+    if isinstance(tree, Relation):
+        signs = ("", *(f" {sign} " for sign in tree.signs))
+        return "".join(sign + text(side) for sign, side in zip(signs, tree.sides, strict=True))
+    match tree:
+        case Number():
+            return numeral(tree)
+        case Name(name=name, order=order):
+            return name + "'" * order
+        case At(name=name, order=order, place=place, side=side):
+            return f"{name}{chr(39) * order}({text(place)}{side})"
+        case Call(function=function, arguments=arguments):
+            return f"{function}({', '.join(map(text, arguments))})"
+        case Negative(operand=operand):
+            return "-" + _part(operand, PRODUCT)
+        case Sum(terms=terms, minus=minus):
+            signs = ("", *(" - " if negative else " + " for negative in minus[1:]))
+            least = (SIGNED, *[PRODUCT] * (len(terms) - 1))
+            return "".join(sign + _part(term, low) for sign, term, low in zip(signs, terms, least, strict=True))
+        case Product(factors=factors, over=over):
+            signs = ("", *("/" if divides else "*" for divides in over[1:]))
+            return "".join(sign + _part(factor, POWER) for sign, factor in zip(signs, factors, strict=True))
+        case Power(base=base, exponent=exponent):
+            return f"{_part(base, ATOM)}^{_exponent(exponent)}"
+
+
+def numeral(number: Number) -> str:
+    """What the user wrote, or the shortest text that gives the value."""
+    return number.text or repr(number.value).removesuffix(".0")
+
+
+def tightness(tree: Node) -> int:
+    """The level of a node in the grammar."""
+    match tree:
+        case Sum():
+            return SUM
+        case Negative():
+            return SIGNED
+        case Number() if numeral(tree).startswith("-"):
+            return SIGNED
+        case Product():
+            return PRODUCT
+        case Power():
+            return POWER
+        case _:
+            return ATOM
+
+
+def _part(tree: Node, least: int) -> str:
+    return text(tree) if tightness(tree) >= least else f"({text(tree)})"
+
+
+def _exponent(tree: Node) -> str:
+    """A sign needs no parentheses in an exponent, where it binds as tightly as there is need."""
+    if isinstance(tree, Negative) and tightness(tree.operand) >= POWER:
+        return text(tree)
+    return _part(tree, POWER)
