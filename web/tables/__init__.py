@@ -1,0 +1,41 @@
+"""Tables of a result: sampled from the exact curve, written as CSV, JSON, XLSX or NPZ with exactly the same numbers."""
+
+from collections.abc import Callable
+from dataclasses import dataclass
+
+from web.tables.csv import to_csv, to_csvw, to_json
+from web.tables.extremes import Extremes, extremes
+from web.tables.npz import to_npz
+from web.tables.sampling import MOST_ROWS, Column, Table, TableError, table
+from web.tables.xlsx import to_xlsx
+
+__all__ = [
+    "FILE_FORMATS",
+    "MOST_ROWS",
+    "Column",
+    "Extremes",
+    "FileFormat",
+    "Table",
+    "TableError",
+    "extremes",
+    "table",
+    "to_csvw",
+]
+
+
+@dataclass(frozen=True, slots=True)
+class FileFormat:
+    """One way to write a table: what it is called, its media type, and the function that does it."""
+
+    name: str
+    media_type: str
+    write: Callable[[Table], bytes]
+
+
+FILE_FORMATS: dict[str, FileFormat] = {
+    "csv": FileFormat("CSV", "text/csv; charset=utf-8; header=present", to_csv),
+    "json": FileFormat("JSON", "application/json", to_json),
+    "xlsx": FileFormat("XLSX", "application/vnd.openxmlformats-officedocument.spreadsheetml.sheet", to_xlsx),
+    "npz": FileFormat("NPZ", "application/x-npz", to_npz),
+}
+"""By file suffix."""

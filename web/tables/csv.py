@@ -1,0 +1,75 @@
+"""Comma-separated values (RFC 4180), their metadata (CSV on the Web), and the same table as JSON."""
+
+from __future__ import annotations
+
+import csv
+import io
+import json
+import math
+from typing import Any
+
+from web.tables.sampling import Table
+
+_FORMULA_STARTS = ("=", "+", "-", "@", "\t", "\r", "\n")
+
+
+def text_cell(text: str) -> str:
+    """A text that no spreadsheet takes for a formula: an apostrophe is put before a sign that could start one."""
+    return "'" + text if text.startswith(_FORMULA_STARTS) else text
+
+
+def to_csv(table: Table) -> bytes:
+    """A heading line, then the rows; CRLF; numbers in the shortest form that reads back as the same number."""
+    text = io.StringIO()
+    writer = csv.writer(text, lineterminator="\r\n")
+    writer.writerow([text_cell(heading) for heading in table.headings])
+    rows = ([_number(value) for value in row] for row in table.rows.tolist())
+    if table.arcs:
+        rows = ([text_cell(arc), *row] for arc, row in zip(table.arcs, rows, strict=True))
+    writer.writerows(rows)
+    return text.getvalue().encode()
+
+
+def to_csvw(table: Table, address: str) -> dict[str, Any]:
+    """The metadata document of `to_csv`'s file at `address` (W3C, Metadata Vocabulary for Tabular Data, 2015).
+
+    A unit is a note on its column, since the vocabulary has no word for it.
+    """
+    columns: list[dict[str, Any]] = [
+        {
+            "name": f"column_{number}",
+            "titles": column.heading,
+            "dc:description": column.meaning,
+            "datatype": "double",
+            "notes": [{"name": column.name, "unit": column.unit or "1"}],
+        }
+        for number, column in enumerate(table.columns, start=1)
+    ]
+    if table.arcs:
+        columns.insert(0, {"name": "arc", "titles": "arc", "dc:description": "name of the arc", "datatype": "string"})
+    return {
+        "@context": ["http://www.w3.org/ns/csvw", {"@language": "en"}],
+        "url": address,
+        "dc:title": table.title,
+        "dialect": {"header": True, "encoding": "utf-8", "lineTerminators": ["\r\n"]},
+        "tableSchema": {"columns": columns},
+        "notes": [{"caution": table.caution}, dict(table.record)],
+    }
+
+
+def to_json(table: Table) -> bytes:
+    """Columns with units and meanings, rows as lists, the record and the caution; null where there is no number."""
+    document: dict[str, Any] = {
+        "title": table.title,
+        "caution": table.caution,
+        "record": dict(table.record),
+        "columns": [{"name": c.name, "unit": c.unit, "meaning": c.meaning} for c in table.columns],
+        "rows": [[value if math.isfinite(value) else None for value in row] for row in table.rows.tolist()],
+    }
+    if table.arcs:
+        document["arcs"] = list(table.arcs)
+    return json.dumps(document, ensure_ascii=False, allow_nan=False, separators=(",", ":")).encode()
+
+
+def _number(value: float) -> str:
+    return repr(value) if math.isfinite(value) else ""
