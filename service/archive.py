@@ -1,0 +1,254 @@
+"""A solution as the document that is stored, answered and shown: JSON values only, in the user's units.
+
+The solver works in coherent SI units.  A function's Legendre coefficients scale linearly with its unit and the breaks
+with the unit of the independent variable; the local variable of an interval (-1 to 1) has no unit, so nothing else
+changes.  What is not a finite number becomes null: JSON (RFC 8259) has no other word for it.
+"""
+
+from __future__ import annotations
+
+import math
+import re
+from collections.abc import Iterable, Mapping
+from importlib.metadata import PackageNotFoundError, version
+from typing import Any
+
+from service.spec import Document
+from solvers.curve import Curve
+from solvers.problem import Condition, Problem
+from solvers.solution import Check, Diagnosis, Finding, MeshStep, Price, Solution
+from solvers.units import PLAIN, Unit
+from web.unit_text import per
+
+FORMAT = 1
+NUMERICAL_PARTS = ("curvewright", "casadi", "numpy", "scipy", "sympy")
+_PRIMED = re.compile(r"(.*?)('*)", re.DOTALL)
+
+
+def result_document(
+    document: Document,
+    problem: Problem,
+    solution: Solution,
+    reading: Mapping[str, Any],
+    times: Mapping[str, float],
+    *,
+    id: str | None = None,
+    state: str = "finished",
+) -> dict[str, Any]:
+    """The result document of `DEVELOPERS.md`.
+
+    `reading` says how the document was understood, `times` are seconds per stage outside the solver.  `id` is the
+    run's, None for a solve without a server.
+    """
+    units = _Units(problem)
+    return {
+        "format": FORMAT,
+        "id": id,
+        "state": state,
+        "problem": document.source,
+        "problem_hash": document.canonical_hash(),
+        "verdict": solution.verdict.value if solution.verdict else None,
+        "value": _in(solution.value, problem.value_unit),
+        "value_error": _in(solution.value_error, problem.value_unit),
+        "value_unit": problem.value_unit.text,
+        "parameters": {
+            name: {"value": _in(value, units.parameter(name)), "unit": units.parameter(name).text}
+            for name, value in solution.parameters.items()
+        },
+        "checks": [_check(check, problem) for check in solution.checks],
+        "curve": _curve(solution, problem, units),
+        "multipliers": {
+            "costates": _costates(solution, problem, units),
+            "prices": [_price(price, problem, units) for price in solution.prices],
+        },
+        "slopes": [],
+        "diagnosis": _diagnosis(solution.diagnosis, problem, units),
+        "notes": list(solution.notes),
+        "reading": dict(reading),
+        "provenance": {
+            "versions": _versions(NUMERICAL_PARTS),
+            "options": {
+                "tolerance": problem.options.tolerance,
+                "time_limit": problem.options.time_limit,
+                "starts": problem.options.starts,
+                "points": problem.options.points,
+            },
+            "times": {stage: _finite(seconds) for stage, seconds in {**times, **solution.times}.items()},
+            "iterations": solution.iterations,
+            "meshes": [_mesh(step, problem.value_unit) for step in solution.meshes],
+        },
+    }
+
+
+class _Units:
+    """The user's unit of everything that a solution names."""
+
+    def __init__(self, problem: Problem) -> None:
+        self.independent = problem.independent_unit
+        self._unknowns = {unknown.name: unknown.unit for unknown in problem.unknowns}
+        self._parameters = {parameter.name: parameter.unit for parameter in problem.parameters}
+        self._conditions: dict[tuple[str, str], Condition] = {}
+        self._pointers: dict[str, Condition] = {}
+        for condition in (*problem.endpoints, *problem.constraints, *problem.integrals):
+            self._conditions[condition.label, condition.pointer] = condition
+            self._pointers.setdefault(condition.pointer, condition)
+
+    def parameter(self, name: str) -> Unit:
+        """The unit of a parameter."""
+        return self._parameters.get(name, PLAIN)
+
+    def function(self, primed: str) -> Unit:
+        """The unit of an unknown or of its derivative, `x''`."""
+        match = _PRIMED.fullmatch(primed)
+        assert match is not None  # the pattern takes any text
+        name, order = match[1], len(match[2])
+        unit = self._unknowns.get(name, PLAIN)
+        if not order:
+            return unit
+        return Unit(per(unit.text, self.independent.text, order), unit.factor / self.independent.factor**order)
+
+    def condition(self, label: str, pointer: str) -> Unit | None:
+        """The unit of a condition, a bound, or the unknown that a pointer means; None where it cannot be told."""
+        found = self._conditions.get((label, pointer)) or self._pointers.get(pointer)
+        if found is not None:
+            return found.unit
+        match pointer.split("/")[1:]:
+            case ["unknowns" | "guess", name, *_] if (plain := _plain(name)) in self._unknowns:
+                return self._unknowns[plain]
+            case ["parameters" | "guess", name, *_] if (plain := _plain(name)) in self._parameters:
+                return self._parameters[plain]
+        return None
+
+
+def _plain(token: str) -> str:
+    """A token of a JSON pointer without its escapes (RFC 6901, section 4)."""
+    return token.replace("~1", "/").replace("~0", "~")
+
+
+def _finite(number: float | None) -> float | None:
+    return float(number) if number is not None and math.isfinite(number) else None
+
+
+def _in(number: float | None, unit: Unit) -> float | None:
+    """An SI number in `unit`."""
+    return None if number is None else _finite(number / unit.factor)
+
+
+def _numbers(values: Iterable[float], unit: Unit) -> list[float | None]:
+    return [_in(value, unit) for value in values]
+
+
+def _pieces(curve: Curve, units: Mapping[str, Unit], independent: Unit) -> list[dict[str, Any]]:
+    """One arc: its mesh and, per function, the coefficients of each interval, lowest degree first."""
+    return [
+        {
+            "name": "",
+            "basis": "legendre",
+            "breaks": _numbers(curve.breaks.tolist(), independent),
+            "functions": {
+                name: [_numbers(piece.tolist(), units[name]) for piece in pieces]
+                for name, pieces in curve.functions.items()
+            },
+        }
+    ]
+
+
+def _curve(solution: Solution, problem: Problem, units: _Units) -> dict[str, Any] | None:
+    if solution.curve is None:
+        return None
+    functions = {name: units.function(name) for name in solution.curve.functions}
+    return {
+        "independent": {"name": problem.independent, "unit": problem.independent_unit.text},
+        "error": _finite(solution.curve_error),
+        "arcs": _pieces(solution.curve, functions, problem.independent_unit),
+        "units": {name: unit.text for name, unit in functions.items()},
+    }
+
+
+def _costates(solution: Solution, problem: Problem, units: _Units) -> dict[str, Any]:
+    """Costates are value per state; the multiplier of a pointwise condition is that per unit of the way too."""
+    if solution.costates is None:
+        return {"arcs": [], "units": {}}
+    value, way = problem.value_unit, problem.independent_unit
+    conditions = {condition.label: condition.unit for condition in problem.constraints}
+    multipliers: dict[str, Unit] = {}
+    for name in solution.costates.functions:
+        if (limit := conditions.get(name)) is not None:
+            text = per(per(value.text, limit.text), way.text)
+            multipliers[name] = Unit(text, value.factor / (limit.factor * way.factor))
+        else:
+            state = units.function(name)
+            multipliers[name] = Unit(per(value.text, state.text), value.factor / state.factor)
+    return {
+        "arcs": _pieces(solution.costates, multipliers, way),
+        "units": {name: unit.text for name, unit in multipliers.items()},
+    }
+
+
+def _where(place: float | None, subject: str, independent: Unit) -> dict[str, Any] | None:
+    return None if place is None and not subject else {"place": _in(place, independent), "subject": subject}
+
+
+def _check(check: Check, problem: Problem) -> dict[str, Any]:
+    return {
+        "name": check.name,
+        "status": check.status.value,
+        "figure": _finite(check.figure),
+        "threshold": _finite(check.threshold),
+        "where": _where(check.place, check.subject, problem.independent_unit),
+        "sentence": check.sentence,
+    }
+
+
+def _price(price: Price, problem: Problem, units: _Units) -> dict[str, Any]:
+    """SI value per SI limit; in the user's units one raises the limit by one of *its* units."""
+    limit = units.condition(price.label, price.pointer) or PLAIN
+    unit = Unit(per(problem.value_unit.text, limit.text), problem.value_unit.factor / limit.factor)
+    return {
+        "condition": price.label,
+        "pointer": price.pointer,
+        "price": _in(price.price, unit),
+        "unit": unit.text,
+    }
+
+
+def _diagnosis(diagnosis: Diagnosis | None, problem: Problem, units: _Units) -> dict[str, Any] | None:
+    if diagnosis is None:
+        return None
+    findings = [_finding(finding, problem, units) for finding in diagnosis.findings]
+    return {"reason": diagnosis.reason, "sentence": diagnosis.sentence, "findings": findings}
+
+
+def _finding(finding: Finding, problem: Problem, units: _Units) -> dict[str, Any]:
+    unit = units.condition(finding.label, finding.pointer) or PLAIN
+    return {
+        "condition": finding.label,
+        "pointer": finding.pointer,
+        "amount": _in(finding.amount, unit),
+        "unit": unit.text,
+        "where": _where(finding.place, "", problem.independent_unit),
+        "note": finding.note,
+    }
+
+
+def _mesh(step: MeshStep, value_unit: Unit) -> dict[str, Any]:
+    return {
+        "intervals": step.intervals,
+        "points": step.points,
+        "lowest_degree": step.lowest_degree,
+        "highest_degree": step.highest_degree,
+        "value": _in(step.value, value_unit),
+        "error": _finite(step.error),
+        "iterations": step.iterations,
+        "seconds": _finite(step.seconds),
+    }
+
+
+def _versions(packages: Iterable[str]) -> dict[str, str]:
+    found: dict[str, str] = {}
+    for package in packages:
+        try:
+            found[package] = version(package)
+        except PackageNotFoundError:  # an unpacked tree that was never installed
+            found[package] = "not installed"
+    return found

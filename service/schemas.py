@@ -1,0 +1,258 @@
+"""The shapes of all answers, as models: the reference page, OpenAPI and the JSON Schemas are made from them.
+
+Answers are not built through these models (a result may hold a million numbers); tests hold the answers to them.
+"""
+
+from __future__ import annotations
+
+from typing import Any, Literal
+
+from pydantic import BaseModel, ConfigDict, Field
+from pydantic.json_schema import GenerateJsonSchema
+
+DIALECT = "https://json-schema.org/draft/2020-12/schema"
+
+RunState = Literal["waiting", "solving", "finished", "failed", "stopped"]
+Verdict = Literal[
+    "global minimum",
+    "local minimum",
+    "global maximum",
+    "local maximum",
+    "stationary",
+    "not a minimum",
+    "not a maximum",
+    "not verified",
+    "best found",
+    "infeasible",
+    "no optimum",
+]
+Pieces = list[list[float | None]]
+
+
+class Part(BaseModel):
+    """A part of an answer; further members may come with later versions."""
+
+    model_config = ConfigDict(extra="allow")
+
+
+class Where(Part):
+    """A place on the independent variable and what it concerns."""
+
+    place: float | None = Field(description="in the unit of the independent variable")
+    subject: str = Field(description="the unknown or condition concerned; empty where there is none")
+
+
+class Amount(Part):
+    """A number with its unit."""
+
+    value: float | None
+    unit: str
+
+
+class CheckResult(Part):
+    """One independent test of the result."""
+
+    name: str
+    status: Literal["passed", "failed", "not applicable"]
+    figure: float | None = Field(description="what was measured, relative")
+    threshold: float | None = Field(description="what the figure must not exceed")
+    where: Where | None = Field(description="where it is worst")
+    sentence: str
+
+
+class ArcPieces(Part):
+    """Functions on one arc as piecewise polynomials."""
+
+    name: str
+    basis: Literal["legendre"]
+    breaks: list[float | None] = Field(description="ends of the n intervals, n + 1 increasing places")
+    functions: dict[str, Pieces] = Field(
+        description="name with primes -> for each interval the coefficients of the Legendre polynomials P0, P1, ... "
+        "in the local variable that runs from -1 to 1 over the interval"
+    )
+
+
+class Independent(Part):
+    """The independent variable."""
+
+    name: str
+    unit: str
+
+
+class CurveDocument(Part):
+    """The exact curve."""
+
+    independent: Independent
+    error: float | None = Field(description="estimate of the relative error of the curve")
+    arcs: list[ArcPieces]
+    units: dict[str, str] = Field(description="unit of each function")
+
+
+class Costates(Part):
+    """Costates and multipliers of pointwise conditions along the curve."""
+
+    arcs: list[ArcPieces]
+    units: dict[str, str]
+
+
+class PriceOfCondition(Part):
+    """Change of the optimal value per unit by which the limit of a condition is raised."""
+
+    condition: str
+    pointer: str
+    price: float | None
+    unit: str
+
+
+class Multipliers(Part):
+    """What the conditions cost."""
+
+    costates: Costates
+    prices: list[PriceOfCondition]
+
+
+class FindingOfDiagnosis(Part):
+    """One condition or sub-expression that stands in the way."""
+
+    condition: str
+    pointer: str
+    amount: float | None
+    unit: str
+    where: Where | None
+    note: str
+
+
+class DiagnosisDocument(Part):
+    """Why there is no full result."""
+
+    reason: str
+    sentence: str
+    findings: list[FindingOfDiagnosis]
+
+
+class MeshOfHistory(Part):
+    """One mesh of the refinement."""
+
+    intervals: int
+    points: int
+    lowest_degree: int
+    highest_degree: int
+    value: float | None
+    error: float | None
+    iterations: int
+    seconds: float | None
+
+
+class Provenance(Part):
+    """What is needed to obtain the same numbers again."""
+
+    versions: dict[str, str]
+    options: dict[str, float | None]
+    times: dict[str, float | None] = Field(description="seconds per stage")
+    iterations: int
+    meshes: list[MeshOfHistory]
+
+
+class ResultDocument(Part):
+    """What a run leaves behind; all numbers in the user's units, null where there is no finite number."""
+
+    format: Literal[1]
+    id: str | None = Field(description="the run's; null for a solve without a server")
+    state: RunState
+    problem: dict[str, Any] = Field(description="the problem document as it was sent")
+    problem_hash: str = Field(pattern="^sha256:[0-9a-f]{64}$")
+    verdict: Verdict | None
+    value: float | None
+    value_error: float | None = Field(description="bound on the error of the value, in its unit")
+    value_unit: str
+    parameters: dict[str, Amount]
+    checks: list[CheckResult]
+    curve: CurveDocument | None
+    multipliers: Multipliers
+    slopes: list[dict[str, Any]]
+    diagnosis: DiagnosisDocument | None
+    notes: list[str]
+    reading: dict[str, Any] = Field(description="how the problem was understood")
+    provenance: Provenance
+
+
+class Links(Part):
+    """Addresses that belong to a run, relative to this server."""
+
+    self: str
+    page: str
+    problem: str
+    events: str
+    result: str | None = None
+    table: str | None = None
+    cancel: str | None = None
+
+
+class Run(Part):
+    """One problem being solved, or solved."""
+
+    id: str
+    state: RunState
+    title: str
+    problem_hash: str
+    created: str = Field(description="RFC 3339")
+    finished: str | None
+    verdict: Verdict | None
+    value: float | None
+    value_error: float | None
+    value_unit: str | None
+    failure: str | None = Field(description="why the run failed, where it did")
+    links: Links
+
+
+class RunPage(Part):
+    """Runs, newest first; `next` is the address of the older ones."""
+
+    runs: list[Run]
+    next: str | None
+
+
+class Complaint(Part):
+    """One thing that is wrong, where, and what would be right."""
+
+    pointer: str | None = Field(default=None, description="JSON pointer (RFC 6901) into the body that was sent")
+    span: list[int] | None = Field(
+        default=None, description="first character of the formula, and the one after the last"
+    )
+    code: str
+    message: str
+    hint: str | None = None
+
+
+class ProblemDetails(Part):
+    """RFC 9457."""
+
+    type: str
+    title: str
+    status: int
+    detail: str
+    stage: str | None = None
+    complaints: list[Complaint] | None = None
+
+
+class ReadingDocument(Part):
+    """How the problem was understood."""
+
+    independent: dict[str, Any]
+    unknowns: list[dict[str, Any]]
+    parameters: list[dict[str, Any]]
+    constants: list[dict[str, Any]]
+    functional: dict[str, Any]
+    relations: list[dict[str, Any]]
+    freedom: dict[str, Any]
+    notes: list[str]
+
+
+class _Dialect(GenerateJsonSchema):
+    schema_dialect = DIALECT
+
+
+def json_schema(model: type[BaseModel], address: str) -> dict[str, Any]:
+    """The model as a JSON Schema document of its own (2020-12)."""
+    schema = model.model_json_schema(schema_generator=_Dialect)
+    return {"$schema": DIALECT, "$id": address, **schema}
