@@ -31,6 +31,7 @@ class Settings(BaseSettings):
     host: str = Field("127.0.0.1", description="address to listen on")
     port: int = Field(8710, ge=0, le=65535, description="port to listen on; 0: any free one")
     open: bool = Field(False, description="allow an address beyond this machine although there are no keys")
+    hosts: str = Field("", description="further names of this server, separated by commas; `*`: any name")
     workers: int = Field(default_factory=_usable_cores, ge=1, le=256, description="runs solved at the same time")
 
     body_bytes: int = Field(256 * 1024, ge=1024, description="largest request body")
