@@ -1,0 +1,105 @@
+"""The embedded engine: some slots in the server's process, one thread each, fed by priority, then age."""
+
+from __future__ import annotations
+
+import heapq
+import itertools
+import threading
+
+from service.engine.records import Capacity, Ending, Job, Outcome, Sink
+from service.engine.slot import Slot
+
+_IDLE_SECONDS = 1.0  # how often a slot without a job looks after its child
+
+
+class LocalEngine:
+    """`slots` children of `job` ("module:function"); what happens goes to `sink`."""
+
+    def __init__(self, slots: int, sink: Sink, *, job: str, memory: int, cancel_grace: float = 0.5) -> None:
+        self._sink = sink
+        self._slots = [Slot(job, memory=memory, cancel_grace=cancel_grace) for _ in range(slots)]
+        self._changed = threading.Condition()
+        self._queue: list[tuple[int, float, int, Job]] = []
+        self._order = itertools.count()
+        self._running: dict[str, Slot] = {}
+        self._closing = False
+        self._threads = [
+            threading.Thread(target=self._work, args=(slot,), name=f"slot-{number}", daemon=True)
+            for number, slot in enumerate(self._slots)
+        ]
+
+    def start(self) -> None:
+        """Start the threads; each starts its child."""
+        for thread in self._threads:
+            thread.start()
+
+    def capacity(self) -> Capacity:
+        """How much room there is now."""
+        with self._changed:
+            free = len(self._slots) - len(self._running) - len(self._queue)
+        return Capacity(len(self._slots), max(0, free), sum(slot.alive for slot in self._slots))
+
+    def submit(self, job: Job) -> None:
+        """Queue a job."""
+        with self._changed:
+            heapq.heappush(self._queue, (-job.priority, job.created, next(self._order), job))
+            self._changed.notify()
+
+    def cancel(self, id: str) -> bool:
+        """Stop a job, queued or running; False where there is none of that name."""
+        with self._changed:
+            slot = self._running.get(id)
+            if slot is not None:
+                slot.cancel()
+                return True
+            entry = next((entry for entry in self._queue if entry[3].id == id), None)
+            if entry is None:
+                return False
+            self._queue.remove(entry)
+            heapq.heapify(self._queue)
+        self._sink.ended(entry[3], Outcome(Ending.STOPPED, reason="stopped on request"))
+        return True
+
+    def close(self) -> None:
+        """End all children; what was running or queued ends as CLOSED."""
+        with self._changed:
+            self._closing = True
+            left = [entry[3] for entry in self._queue]
+            self._queue.clear()
+            for slot in self._slots:
+                slot.shut()
+            self._changed.notify_all()
+        for job in left:
+            self._sink.ended(job, Outcome(Ending.CLOSED, reason="the server was closed"))
+        for thread in self._threads:
+            if thread.ident is not None:
+                thread.join()
+
+    def _work(self, slot: Slot) -> None:
+        """The life of one thread."""
+        slot.tend()
+        while (job := self._next(slot)) is not None:
+            try:
+                outcome = slot.run(job, lambda event, job=job: self._sink.progress(job, event))  # type: ignore[misc]
+            finally:
+                with self._changed:
+                    del self._running[job.id]
+            self._sink.ended(job, outcome)
+            if not slot.alive:
+                slot.tend()
+        slot.close()
+
+    def _next(self, slot: Slot) -> Job | None:
+        """The next job for this slot; None when the engine closes."""
+        while True:
+            with self._changed:
+                if not self._queue and not self._closing:
+                    self._changed.wait(_IDLE_SECONDS)
+                if self._closing:
+                    return None
+                if self._queue:
+                    job = heapq.heappop(self._queue)[3]
+                    slot.arm()
+                    self._running[job.id] = slot
+                    return job
+            slot.tend()
