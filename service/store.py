@@ -1,0 +1,452 @@
+"""The store speaks in records: no SQL leaves this module, and no row enters it.
+
+`Store(url)` brings the database to the current schema.  What is accepted is on disk when `accept` returns.
+
+    accept(run, document)  claim(owner, n, lease)   finish / fail / stop / give_back(id, attempt, ...)
+    get(id)  document(id)  result(id)  list(...)    ask_cancel(id)  delete(id)  renew(owner, lease)
+    find_by_hash(hash)     counts()  writable()     take_back(owner)  close()
+
+A state changes only by compare-and-set on (id, attempt): the answer of an attempt that is no longer the current one
+changes nothing.
+
+    StoreError                 the database cannot be used now
+    +-- StoreFullError         no room on the disk: nothing was accepted or changed
+    IdempotencyError           the key was used with another body
+    QueueFullError             too many runs are waiting
+    CursorError                a list cursor that this store did not make
+"""
+
+from __future__ import annotations
+
+import base64
+import binascii
+import json
+import secrets
+import sqlite3
+import threading
+import time
+import zlib
+from collections.abc import Iterator, Mapping, Sequence
+from contextlib import contextmanager, nullcontext
+from dataclasses import dataclass, fields
+from enum import StrEnum
+from pathlib import Path
+from typing import Any
+
+import sqlalchemy as sql
+from sqlalchemy.engine import Connection, Row
+
+from service.schema import documents, results, runs, upgrade
+
+
+class State(StrEnum):
+    """How far a run is."""
+
+    WAITING = "waiting"
+    SOLVING = "solving"
+    FINISHED = "finished"  # the solver came to an end of its own, with whatever verdict
+    FAILED = "failed"  # no answer: a limit, a crash, an error of ours; `reason` says which
+    STOPPED = "stopped"  # cancelled; there may be a result with the best curve so far
+
+    @property
+    def ended(self) -> bool:
+        """True where nothing more will happen."""
+        return self not in (State.WAITING, State.SOLVING)
+
+
+@dataclass(frozen=True, slots=True)
+class Run:
+    """One problem document being solved.  Times are seconds since 1970; numbers of the result in the user's units."""
+
+    id: str
+    title: str
+    document_hash: str  # of the canonical document: equal where the same problem is meant
+    created: float
+    updated: float
+    state: State = State.WAITING
+    priority: int = 0  # higher first
+    time_limit: float = 60.0  # seconds that the document grants its solver
+    key: str | None = None  # idempotency key
+    key_hash: str | None = None  # of the body that came with it
+    attempt: int = 0  # which one this is; 0: none yet
+    deaths: int = 0  # workers that died of it
+    owner: str | None = None  # who solves it, until `lease`
+    lease: float | None = None
+    cancel_asked: bool = False
+    verdict: str | None = None
+    value: float | None = None
+    value_error: float | None = None
+    value_unit: str | None = None
+    seconds: float | None = None  # of work in the worker
+    reason: str | None = None  # why it failed, or how the last worker died
+
+
+@dataclass(frozen=True, slots=True)
+class Page:
+    """A part of a list; `after` continues it, None at its end."""
+
+    runs: tuple[Run, ...]
+    after: str | None
+
+
+@dataclass(frozen=True, slots=True)
+class Figures:
+    """What a result says in one line."""
+
+    verdict: str | None = None
+    value: float | None = None
+    value_error: float | None = None
+    value_unit: str | None = None
+    seconds: float | None = None
+
+
+class StoreError(Exception):
+    """The database cannot be used now."""
+
+
+class StoreFullError(StoreError):
+    """There is no room on the disk: nothing was accepted or changed."""
+
+
+class IdempotencyError(Exception):
+    """The idempotency key was used before, with another body."""
+
+
+class QueueFullError(Exception):
+    """Too many runs are waiting."""
+
+
+class CursorError(ValueError):
+    """A cursor that this store did not make."""
+
+
+_ALPHABET = "23456789abcdefghjkmnpqrstuvwxyz"  # no look-alikes: addresses are read out and typed
+_LENGTH = 26  # 31^26 > 2^128
+_COMPRESS_FROM = 8 * 1024  # bytes
+_COLUMNS = [runs.c[field.name] for field in fields(Run)]
+_UNENDED = (State.WAITING.value, State.SOLVING.value)
+
+
+def new_run(
+    title: str,
+    document_hash: str,
+    *,
+    time_limit: float = 60.0,
+    priority: int = 0,
+    key: str | None = None,
+    key_hash: str | None = None,
+) -> Run:
+    """A run that waits, with an address nobody can guess."""
+    id = "".join(secrets.choice(_ALPHABET) for _ in range(_LENGTH))
+    now = time.time()
+    return Run(id, title, document_hash, now, now, priority=priority, time_limit=time_limit, key=key, key_hash=key_hash)
+
+
+class Store:
+    """The database behind the service.  Every method may be called from any thread."""
+
+    def __init__(self, url: str) -> None:
+        self._sqlite = url.startswith("sqlite")
+        if self._sqlite and (path := sql.make_url(url).database):
+            Path(path).parent.mkdir(mode=0o700, parents=True, exist_ok=True)
+        self._engine = _engine(url)
+        self._reader = self._engine.execution_options(reads_only=True)
+        # SQLite has one writer: within a process a lock is fairer and faster than its busy waiting.
+        self._turn = threading.Lock() if self._sqlite else nullcontext()
+        with _translated():
+            upgrade(self._engine)
+
+    def close(self) -> None:
+        """Give the connections back."""
+        self._engine.dispose()
+
+    # Accepting
+
+    def accept(self, run: Run, document: str, *, queue: int | None = None) -> Run:
+        """Keep a new run for good; return it, or the earlier run with the same key and body.
+
+        `run` may be claimed already (state solving, attempt 1, owner and lease): that saves a commit where a slot is
+        free.  `queue`: most runs that may wait.  Raises IdempotencyError, QueueFullError, StoreError.
+        """
+        try:
+            with self._write() as connection:
+                if run.key is not None and (earlier := _one(connection, runs.c.key == run.key)):
+                    return _same_body(earlier, run)
+                if queue is not None and run.state is State.WAITING:
+                    waiting = sql.select(sql.func.count()).where(runs.c.state == State.WAITING.value)
+                    if connection.execute(waiting).scalar_one() >= queue:
+                        raise QueueFullError(f"{queue} runs are waiting already")
+                connection.execute(runs.insert().values(_row(run)))
+                connection.execute(documents.insert().values(run_id=run.id, document=document))
+        except sql.exc.IntegrityError:
+            # The key came in through another server between the look and the insert.
+            if run.key is not None and (winner := self._get(runs.c.key == run.key)):
+                return _same_body(winner, run)
+            raise
+        return run
+
+    # Reading
+
+    def get(self, id: str) -> Run | None:
+        """The run, or None."""
+        return self._get(runs.c.id == id)
+
+    def document(self, id: str) -> str | None:
+        """The problem document of a run, as it was accepted."""
+        with self._read() as connection:
+            text: str | None = connection.execute(
+                sql.select(documents.c.document).where(documents.c.run_id == id)
+            ).scalar_one_or_none()
+        return text
+
+    def result(self, id: str) -> bytes | None:
+        """The result document of a run as JSON text in UTF-8, or None."""
+        with self._read() as connection:
+            row = connection.execute(
+                sql.select(results.c.document, results.c.compressed).where(results.c.run_id == id)
+            ).one_or_none()
+        if row is None:
+            return None
+        return zlib.decompress(row.document) if row.compressed else bytes(row.document)
+
+    def list(self, *, limit: int = 50, after: str | None = None, state: State | None = None) -> Page:
+        """Runs, the newest first, from the place where `after` points.  Raises CursorError."""
+        query = sql.select(*_COLUMNS).order_by(runs.c.created.desc(), runs.c.id.desc()).limit(limit + 1)
+        if after is not None:
+            query = query.where(sql.tuple_(runs.c.created, runs.c.id) < sql.tuple_(*_read_cursor(after)))
+        if state is not None:
+            query = query.where(runs.c.state == state.value)
+        with self._read() as connection:
+            found = [_run(row) for row in connection.execute(query)]
+        page = tuple(found[:limit])
+        return Page(page, _cursor(page[-1]) if len(found) > limit else None)
+
+    def find_by_hash(self, document_hash: str) -> Run | None:
+        """The newest finished run with a verdict on the same problem, or None."""
+        query = (
+            sql.select(*_COLUMNS)
+            .where(runs.c.document_hash == document_hash, runs.c.state == State.FINISHED.value)
+            .where(runs.c.verdict.is_not(None))
+            .order_by(runs.c.created.desc())
+            .limit(1)
+        )
+        with self._read() as connection:
+            row = connection.execute(query).one_or_none()
+        return None if row is None else _run(row)
+
+    def counts(self) -> Mapping[State, int]:
+        """How many runs there are in each state."""
+        query = sql.select(runs.c.state, sql.func.count()).group_by(runs.c.state)
+        with self._read() as connection:
+            found = {State(state): int(count) for state, count in connection.execute(query)}
+        return {state: found.get(state, 0) for state in State}
+
+    def writable(self) -> bool:
+        """True where a change can be committed now."""
+        try:
+            with self._write() as connection:
+                # Nothing remains, but pages are written: a full disk or a lost mount shows.
+                connection.execute(runs.insert().values(_row(Run("", "", "", 0.0, 0.0))))
+                connection.execute(runs.delete().where(runs.c.id == ""))
+        except StoreError:
+            return False
+        return True
+
+    # Solving
+
+    def claim(self, owner: str, most: int, lease_seconds: float) -> Sequence[Run]:
+        """Take up to `most` runs that wait, or whose owner let the lease run out, by priority, then age."""
+        now = time.time()
+        free = (runs.c.state == State.WAITING.value) | (
+            (runs.c.state == State.SOLVING.value) & (runs.c.lease < now) & (runs.c.owner != owner)
+        )
+        chosen = sql.select(runs.c.id).where(free).order_by(runs.c.priority.desc(), runs.c.created).limit(most)
+        if not self._sqlite:
+            chosen = chosen.with_for_update(skip_locked=True)
+        change = (
+            runs.update()
+            .where(runs.c.id.in_(chosen.scalar_subquery()))
+            .values(
+                {
+                    "state": State.SOLVING.value,
+                    "attempt": runs.c.attempt + 1,
+                    "owner": owner,
+                    "lease": now + lease_seconds,
+                    "updated": now,
+                }
+            )
+            .returning(*_COLUMNS)
+        )
+        with self._write() as connection:
+            taken = [_run(row) for row in connection.execute(change)]
+        return sorted(taken, key=lambda run: (-run.priority, run.created))
+
+    def renew(self, owner: str, lease_seconds: float) -> Sequence[str]:
+        """Prolong all leases of `owner`; return the runs among them that somebody wants stopped."""
+        mine = (runs.c.owner == owner) & (runs.c.state == State.SOLVING.value)
+        with self._write() as connection:
+            connection.execute(runs.update().where(mine).values({"lease": time.time() + lease_seconds}))
+            found = connection.execute(sql.select(runs.c.id).where(mine, runs.c.cancel_asked == 1))
+            return [str(id) for id in found.scalars()]
+
+    def finish(self, id: str, attempt: int, result: bytes, figures: Figures, *, stopped: bool = False) -> bool:
+        """Keep the result (JSON text in UTF-8); `stopped` where the run was cancelled.  False: not its attempt."""
+        large = len(result) >= _COMPRESS_FROM
+        state = State.STOPPED if stopped else State.FINISHED
+        values = {field.name: getattr(figures, field.name) for field in fields(Figures)}
+        content = zlib.compress(result, 1) if large else result
+        with self._write() as connection:
+            if not _move(connection, id, attempt, state, values):
+                return False
+            connection.execute(results.insert().values(run_id=id, compressed=int(large), document=content))
+        return True
+
+    def fail(self, id: str, attempt: int, reason: str, *, deaths: int = 0, seconds: float | None = None) -> bool:
+        """End a run without a result.  False: not its attempt."""
+        values = {"reason": reason, "deaths": runs.c.deaths + deaths, "seconds": seconds}
+        with self._write() as connection:
+            return _move(connection, id, attempt, State.FAILED, values)
+
+    def stop(self, id: str, attempt: int, *, seconds: float | None = None) -> bool:
+        """End a cancelled run that left no result.  False: not its attempt."""
+        with self._write() as connection:
+            return _move(connection, id, attempt, State.STOPPED, {"seconds": seconds, "reason": "stopped on request"})
+
+    def give_back(self, id: str, attempt: int, *, reason: str | None = None, deaths: int = 0) -> bool:
+        """Let a run wait again after an attempt that says nothing final.  False: not its attempt."""
+        values: dict[str, Any] = {"deaths": runs.c.deaths + deaths, "owner": None, "lease": None}
+        if reason is not None:
+            values["reason"] = reason
+        with self._write() as connection:
+            return _move(connection, id, attempt, State.WAITING, values)
+
+    def take_back(self, owner: str) -> int:
+        """At start: let runs wait again that an earlier life of this server left.  Returns how many."""
+        change = (
+            runs.update()
+            .where(runs.c.owner == owner, runs.c.state == State.SOLVING.value)
+            .values({"state": State.WAITING.value, "owner": None, "lease": None, "updated": time.time()})
+        )
+        with self._write() as connection:
+            return connection.execute(change).rowcount
+
+    # Ending from outside
+
+    def ask_cancel(self, id: str) -> Run | None:
+        """Stop a waiting run at once, mark one that is being solved; return it as it is then, None where unknown."""
+        now = time.time()
+        waiting = (
+            runs.update()
+            .where(runs.c.id == id, runs.c.state == State.WAITING.value)
+            .values({"state": State.STOPPED.value, "cancel_asked": 1, "reason": "stopped on request", "updated": now})
+        )
+        solving = (
+            runs.update()
+            .where(runs.c.id == id, runs.c.state == State.SOLVING.value)
+            .values({"cancel_asked": 1, "updated": now})
+        )
+        with self._write() as connection:
+            if not connection.execute(waiting).rowcount:
+                connection.execute(solving)
+            return _one(connection, runs.c.id == id)
+
+    def delete(self, id: str) -> bool:
+        """Forget a run with its document and result, whatever its state.  False where unknown."""
+        with self._write() as connection:
+            return connection.execute(runs.delete().where(runs.c.id == id)).rowcount > 0
+
+    # Connections
+
+    def _get(self, condition: sql.ColumnElement[bool]) -> Run | None:
+        with self._read() as connection:
+            return _one(connection, condition)
+
+    @contextmanager
+    def _read(self) -> Iterator[Connection]:
+        with _translated(), self._reader.connect() as connection:
+            yield connection
+
+    @contextmanager
+    def _write(self) -> Iterator[Connection]:
+        """A transaction that is on disk when the block is left."""
+        with _translated(), self._turn, self._engine.begin() as connection:
+            yield connection
+
+
+def _move(connection: Connection, id: str, attempt: int, state: State, values: Mapping[str, Any]) -> bool:
+    """Change the state of a run that is being solved in this attempt."""
+    change = (
+        runs.update()
+        .where(runs.c.id == id, runs.c.attempt == attempt, runs.c.state == State.SOLVING.value)
+        .values({"state": state.value, "updated": time.time(), "owner": None, "lease": None, **values})
+    )
+    return connection.execute(change).rowcount == 1
+
+
+def _one(connection: Connection, condition: sql.ColumnElement[bool]) -> Run | None:
+    row = connection.execute(sql.select(*_COLUMNS).where(condition)).one_or_none()
+    return None if row is None else _run(row)
+
+
+def _same_body(earlier: Run, run: Run) -> Run:
+    if earlier.key_hash != run.key_hash:
+        raise IdempotencyError(f"the key of run {earlier.id} came with another body")
+    return earlier
+
+
+def _row(run: Run) -> dict[str, Any]:
+    row = {field.name: getattr(run, field.name) for field in fields(Run)}
+    return row | {"state": run.state.value, "cancel_asked": int(run.cancel_asked)}
+
+
+def _run(row: Row[Any]) -> Run:
+    values = row._asdict()
+    return Run(**values | {"state": State(values["state"]), "cancel_asked": bool(values["cancel_asked"])})
+
+
+def _cursor(run: Run) -> str:
+    return base64.urlsafe_b64encode(json.dumps([run.created, run.id]).encode()).decode().rstrip("=")
+
+
+def _read_cursor(text: str) -> tuple[float, str]:
+    try:
+        created, id = json.loads(base64.urlsafe_b64decode(text + "=" * (-len(text) % 4)))
+        return float(created), str(id)
+    except (ValueError, TypeError, binascii.Error) as error:
+        raise CursorError("not a cursor of this list") from error
+
+
+@contextmanager
+def _translated() -> Iterator[None]:
+    """Turn what the database driver raises into this module's errors."""
+    try:
+        yield
+    except sql.exc.IntegrityError:
+        raise
+    except sql.exc.DBAPIError as error:
+        full = getattr(error.orig, "sqlite_errorcode", None) == sqlite3.SQLITE_FULL
+        full = full or getattr(error.orig, "sqlstate", None) == "53100"  # PostgreSQL: disk_full
+        raise (StoreFullError if full else StoreError)(str(error.orig)) from error
+    except sql.exc.TimeoutError as error:
+        raise StoreError("all connections are in use") from error
+
+
+def _engine(url: str) -> sql.Engine:
+    if not url.startswith("sqlite"):
+        return sql.create_engine(url, pool_pre_ping=True)
+    engine = sql.create_engine(url, connect_args={"check_same_thread": False, "timeout": 10.0})
+
+    @sql.event.listens_for(engine, "connect")
+    def _configure(connection: Any, _: Any) -> None:
+        connection.isolation_level = None  # the driver must not begin transactions behind our back
+        connection.execute("PRAGMA journal_mode = WAL")
+        connection.execute("PRAGMA synchronous = FULL")
+        connection.execute("PRAGMA foreign_keys = ON")
+
+    @sql.event.listens_for(engine, "begin")
+    def _begin(connection: Connection) -> None:
+        # Take the write lock first: a read lock that turns into one fails where two do it at once.
+        if not connection.get_execution_options().get("reads_only"):
+            connection.exec_driver_sql("BEGIN IMMEDIATE")
+
+    return engine
