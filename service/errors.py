@@ -173,7 +173,7 @@ TYPES: Mapping[str, ProblemType] = {kind.name: kind for kind in _TYPES}
 _OF_STATUS = {400: "bad-request", 404: "not-found", 405: "method", 406: "not-acceptable", 413: "too-large"}
 
 
-class Fault(Exception):
+class Fault(Exception):  # noqa: N818 (a fault is what it is)
     """An expected failure: its problem type, one sentence about this case, the complaints, further headers."""
 
     def __init__(
@@ -224,9 +224,10 @@ def respond(request: Request, fault: Fault) -> Response:
 
 
 def _page(fault: Fault) -> str:
-    from web.pages import problem_page
+    from web.pages.fault import fault_page
+    from web.render import render
 
-    return problem_page(fault.body())
+    return render(fault_page(fault.body()))
 
 
 def install(app: FastAPI) -> None:

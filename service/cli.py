@@ -1,0 +1,256 @@
+"""The command line: `curvewright serve`, `solve`, `check`, `samples`.
+
+Exit codes: 0 the verdict is of the sort that was sought (or the document is fine), 1 a weaker verdict or none,
+2 the document or the call was refused.  Modules are imported by the command that needs them: `serve` never loads the
+solver, and `--help` loads nothing.
+"""
+
+from __future__ import annotations
+
+import json
+import sys
+import time
+from collections.abc import Callable, Iterator, Mapping
+from contextlib import contextmanager
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import click
+
+if TYPE_CHECKING:
+    from service.complaints import Refused
+    from solvers.problem import Problem
+    from solvers.solution import Progress, Watch
+
+SOUGHT = {
+    "minimum": {"global minimum", "local minimum"},
+    "maximum": {"global maximum", "local maximum"},
+    "stationary": {"stationary", "global minimum", "local minimum", "global maximum", "local maximum"},
+}
+"""The sort of extremum asked for -> the verdicts that are it."""
+
+REFUSED = 2
+
+
+@click.group(context_settings={"help_option_names": ["-h", "--help"]})
+@click.version_option(package_name="curvewright")
+def main() -> None:
+    """Optimal curves, shapes and motions with their evidence."""
+
+
+@main.command()
+@click.option("--host", help="Address to listen on; beyond this machine only with --open.  [default: 127.0.0.1]")
+@click.option("--port", type=click.IntRange(0, 65535), help="Port to listen on, 0 for any free one.  [default: 8710]")
+@click.option("--data", type=click.Path(path_type=Path, file_okay=False), help="Directory of the database.")
+@click.option("--workers", type=click.IntRange(1, 256), help="Runs solved at the same time.  [default: all cores]")
+@click.option("--open", "open_", is_flag=True, default=None, help="Let other machines in, although there are no keys.")
+def serve(host: str | None, port: int | None, data: Path | None, workers: int | None, open_: bool | None) -> None:
+    """Serve pages and the HTTP interface until interrupted.
+
+    What is not given is read from environment variables (CURVEWRIGHT_PORT and so on).
+    """
+    from pydantic import ValidationError
+
+    from service.serve import run
+    from service.settings import Settings
+
+    given = {"host": host, "port": port, "data": data, "workers": workers, "open": open_}
+    try:
+        settings = Settings(**{name: value for name, value in given.items() if value is not None})  # type: ignore[arg-type]
+    except ValidationError as error:
+        problems = "; ".join(f"{'.'.join(map(str, item['loc']))}: {item['msg']}" for item in error.errors())
+        raise click.UsageError(f"The settings do not hold together: {problems}") from None
+    if not settings.loopback and not settings.open:
+        raise click.UsageError(
+            f"{settings.host} can be reached from other machines, and this service has no keys yet: whoever reaches it "
+            "can read, start and delete every run. Give --open if that is what you want, or leave --host out."
+        )
+    if not settings.loopback:
+        click.echo(f"Warning: open to every machine that reaches {settings.host}; there are no keys.", err=True)
+    run(settings, announce=lambda address: click.echo(f"Curvewright serves at {address} (stop with Ctrl-C)"))
+
+
+@main.command()
+@click.argument("file")
+@click.option("--json", "as_json", is_flag=True, help="Print the result document instead of the summary.")
+@click.option("--table", type=click.Path(path_type=Path, dir_okay=False), help="Write a table: .csv .json .xlsx .npz")
+@click.option("--rows", type=int, help="Rows of the table, evenly spaced, both ends included.")
+@click.option("--step", type=float, help="Step of the table in the unit of the independent variable.")
+@click.option("--derivatives", type=click.IntRange(0, 3), default=0, help="Derivatives in the table.")
+def solve(file: str, as_json: bool, table: Path | None, rows: int | None, step: float | None, derivatives: int) -> None:
+    """Solve the problem in FILE (- for standard input, or the name of a sample)."""
+    body = _body(file)
+    suffix = _suffix(table, rows, step)
+    result = _solved(body)
+    if table is not None:
+        _write_table(result, table, suffix, rows=rows, step=step, derivatives=derivatives)
+    if as_json:
+        click.echo(json.dumps(result, ensure_ascii=False, allow_nan=False))
+    else:
+        from service.summary import result_text
+
+        click.echo(result_text(result))
+    sys.exit(0 if result["verdict"] in SOUGHT[result["problem"]["functional"]["seek"]] else 1)
+
+
+@main.command()
+@click.argument("file")
+@click.option("--json", "as_json", is_flag=True, help="Print the reading as JSON.")
+def check(file: str, as_json: bool) -> None:
+    """Say how the problem in FILE (- for standard input, or a sample) is understood, without solving it."""
+    from service.assemble import assemble
+    from service.reading import read_back
+    from service.spec import read
+
+    with _refusals(body := _body(file)):
+        document = read(body)
+        reading = read_back(assemble(document), document)
+    if as_json:
+        click.echo(json.dumps(reading, ensure_ascii=False, allow_nan=False))
+        return
+    from service.summary import reading_text
+
+    click.echo(reading_text(document.source, reading))
+
+
+@main.command()
+def samples() -> None:
+    """List the sample problems; each name can stand for FILE."""
+    from service.samples import ABOUT
+
+    for name, sentence in ABOUT.items():
+        click.echo(f"{name:<24}{sentence}")
+
+
+def _body(file: str) -> bytes:
+    """The bytes of FILE: standard input, a file, or a sample where there is no such file."""
+    if file == "-":
+        return sys.stdin.buffer.read()
+    path = Path(file)
+    if path.is_file():
+        return path.read_bytes()
+    from service.samples import names, text
+
+    if file in names():
+        return text(file).encode()
+    raise click.UsageError(f"There is no file '{file}', and no sample of that name (see `curvewright samples`).")
+
+
+@contextmanager
+def _refusals(body: bytes) -> Iterator[None]:
+    """Print the complaints of a refused document and exit."""
+    from service.complaints import Refused
+
+    try:
+        yield
+    except Refused as refused:
+        _refuse(refused, body)
+
+
+def _refuse(refused: Refused, body: bytes) -> None:
+    from service.summary import refusal_text
+
+    click.echo(refusal_text(refused, body), err=True)
+    sys.exit(REFUSED)
+
+
+def _solved(body: bytes) -> dict[str, Any]:
+    """Read, solve and archive in this process; Ctrl-C stops with the best curve so far."""
+    from service.archive import result_document
+    from service.assemble import assemble
+    from service.reading import read_back
+    from service.spec import read
+
+    started = time.perf_counter()
+    with _refusals(body):
+        document = read(body)
+        problem = assemble(document)
+        reading = read_back(problem, document)
+    from solvers.solve import solve as solve_problem
+
+    ready = time.perf_counter()
+    with _watching(problem) as watch:
+        solution = solve_problem(problem, watch)
+    times = {"read": ready - started, "all": time.perf_counter() - started}
+    return result_document(document, problem, solution, reading, times)
+
+
+@contextmanager
+def _watching(problem: Problem) -> Iterator[Watch]:
+    """A watch that draws a bar on a terminal (digits reached of those asked for) and turns Ctrl-C into a stop."""
+    import math
+    import signal
+
+    asked = False
+
+    def stop(number: int, frame: object) -> None:
+        nonlocal asked
+        asked = True
+        signal.signal(signal.SIGINT, signal.default_int_handler)  # a second Ctrl-C ends at once
+
+    before = signal.signal(signal.SIGINT, stop)
+    digits = -math.log10(problem.options.tolerance)
+    shown = 0
+    try:
+        with click.progressbar(
+            length=100,
+            label="Solving",
+            show_eta=False,
+            file=sys.stderr,
+            hidden=not sys.stderr.isatty(),
+            item_show_func=_progress_text(problem),
+        ) as bar:
+
+            def watch(progress: Progress) -> bool:
+                nonlocal shown
+                if progress.error is not None and 0 < progress.error < 1:
+                    reached = min(99, int(100 * -math.log10(progress.error) / digits))
+                    shown, step = max(shown, reached), max(0, reached - shown)
+                else:
+                    step = 0
+                bar.update(step, progress)
+                return asked
+
+            yield watch
+            bar.update(100 - shown)
+    finally:
+        signal.signal(signal.SIGINT, before)
+
+
+def _progress_text(problem: Problem) -> Callable[[Progress | None], str]:
+    from web.display import quantity
+
+    def text(progress: Progress | None) -> str:
+        if progress is None:
+            return ""
+        value = None if progress.value is None else progress.value / problem.value_unit.factor
+        return f"mesh {progress.mesh}, iteration {progress.iteration}, {quantity(value, problem.value_unit.text)}"
+
+    return text
+
+
+def _suffix(table: Path | None, rows: int | None, step: float | None) -> str:
+    """The format of the table by its suffix; refused before the solve, not after it."""
+    from web.tables import FILE_FORMATS
+
+    if table is None:
+        if rows is not None or step is not None:
+            raise click.UsageError("--rows and --step belong to --table.")
+        return ""
+    if rows is not None and step is not None:
+        raise click.UsageError("Give --rows or --step, not both.")
+    suffix = table.suffix.removeprefix(".").lower()
+    if suffix not in FILE_FORMATS:
+        raise click.UsageError(f"A table is written as {', '.join('.' + known for known in FILE_FORMATS)}.")
+    return suffix
+
+
+def _write_table(result: Mapping[str, Any], path: Path, suffix: str, **choice: Any) -> None:
+    from web.tables import FILE_FORMATS, TableError, table
+
+    try:
+        path.write_bytes(FILE_FORMATS[suffix].write(table(result, **choice)))
+    except TableError as error:
+        click.echo(f"No table: {error.message} {error.hint}", err=True)
+    else:
+        click.echo(f"Table written to {path}", err=True)

@@ -1,0 +1,153 @@
+"""What the command line prints for people: complaints with a marker under the place, and the summary of a result."""
+
+from __future__ import annotations
+
+import json
+import unicodedata
+from collections.abc import Iterator, Mapping
+from typing import Any
+
+from service.complaints import Complaint, Refused, Stage
+from web import display
+from web.caution import CAUTION
+
+_WIDEST = 100
+_FIRST_COLUMN = 14
+
+
+def refusal_text(refused: Refused, body: bytes) -> str:
+    """All complaints, each with its pointer, the formula it is about, and a marker under the characters meant."""
+    text = body.decode("utf-8", "replace").removeprefix("\ufeff")
+    source = None if refused.stage is Stage.JSON else json.loads(text)
+    count = len(refused.complaints)
+    head = f"The document is refused ({refused.stage.value}): {count} complaint{'s' if count > 1 else ''}."
+    return "\n\n".join([head, *(_complaint(complaint, text, source) for complaint in refused.complaints)])
+
+
+def _complaint(complaint: Complaint, text: str, source: Any) -> str:
+    lines = [f"{complaint.pointer or '(document)'}: {complaint.message}"]
+    subject = text if source is None else _at(source, complaint.pointer)
+    if complaint.span is not None and isinstance(subject, str):
+        lines += _marked(subject, *complaint.span)
+    if complaint.hint:
+        lines.append(f"  {complaint.hint}")
+    return "\n".join(lines)
+
+
+def _at(source: Any, pointer: str) -> Any:
+    """What a JSON pointer (RFC 6901) means, None where it leads nowhere."""
+    for token in pointer.split("/")[1:]:
+        step = token.replace("~1", "/").replace("~0", "~")
+        if isinstance(source, dict):
+            source = source.get(step)
+        elif isinstance(source, list) and step.isdigit() and int(step) < len(source):
+            source = source[int(step)]
+        else:
+            return None
+    return source
+
+
+def _marked(text: str, start: int, end: int) -> list[str]:
+    """The line of `text` with the span, cut to the width of a page, and a line of carets below it."""
+    first = text.rfind("\n", 0, start) + 1
+    last = text.find("\n", start)
+    line = text[first : last if last >= 0 else len(text)]
+    start, end = start - first, min(end - first, len(line))
+    cut = max(0, start - _WIDEST // 2)
+    shown = line[cut : cut + _WIDEST].replace("\t", " ")
+    carets = " " * _width(shown[: start - cut]) + "^" * max(1, _width(shown[start - cut : end - cut]))
+    return [f"    {shown}", f"    {carets}"]
+
+
+def _width(text: str) -> int:
+    """Columns on a terminal: combining marks take none, wide letters two."""
+    return sum(
+        0 if unicodedata.combining(letter) else 2 if unicodedata.east_asian_width(letter) in "WF" else 1
+        for letter in text
+    )
+
+
+def result_text(result: Mapping[str, Any]) -> str:
+    """Title, verdict, value with its error, parameters, checks with figures, notes, diagnosis."""
+    return "\n".join(_lines(result))
+
+
+def _lines(result: Mapping[str, Any]) -> Iterator[str]:
+    yield str(result["problem"].get("title") or "Untitled problem")
+    yield ""
+    yield _row("verdict", result["verdict"] or "none")
+    if result["value"] is not None:
+        value = display.with_error(result["value"], result["value_error"])
+        yield _row("value", display.joined(value, result["value_unit"]))
+    for name, parameter in result["parameters"].items():
+        yield _row(name, display.quantity(parameter["value"], parameter["unit"], 9))
+    yield from _diagnosis(result["diagnosis"])
+    if result["checks"]:
+        yield ""
+        yield "Checks"
+        for check in result["checks"]:
+            yield from _check(check, result)
+    if prices := result["multipliers"]["prices"]:
+        yield ""
+        yield "Prices (change of the value per unit of the limit)"
+        for price in prices:
+            yield f"  {display.quantity(price['price'], price['unit'])}  {price['condition']}"
+    if result["notes"]:
+        yield ""
+        yield "Notes"
+        yield from (f"  {note}" for note in result["notes"])
+    if result["curve"] is not None:
+        yield ""
+        yield CAUTION
+
+
+def _row(name: str, text: str) -> str:
+    return f"  {name:<{_FIRST_COLUMN}}{text}"
+
+
+def _check(check: Mapping[str, Any], result: Mapping[str, Any]) -> Iterator[str]:
+    figure = ""
+    if check["figure"] is not None:
+        figure = f"{check['figure']:.1e}"
+        if check["threshold"] is not None:
+            figure += f" (at most {check['threshold']:.0e})"
+    yield f"  {check['status']:<16}{check['name']:<{_FIRST_COLUMN}}{figure}".rstrip()
+    if check["status"] == "failed":
+        yield f"{'':18}{check['sentence']}"
+        where = check["where"]
+        if where and where["place"] is not None and result["curve"] is not None:
+            independent = result["curve"]["independent"]
+            place = display.quantity(where["place"], independent["unit"])
+            yield f"{'':18}worst at {independent['name']} = {place}{', ' + where['subject'] if where['subject'] else ''}"
+
+
+def _diagnosis(diagnosis: Mapping[str, Any] | None) -> Iterator[str]:
+    if diagnosis is None:
+        return
+    yield ""
+    yield f"Diagnosis: {diagnosis['sentence']}"
+    for finding in diagnosis["findings"]:
+        parts = [finding["condition"]]
+        if finding["amount"] is not None:
+            parts.append(f"by {display.quantity(finding['amount'], finding['unit'], 4)}")
+        if finding["where"] and finding["where"]["place"] is not None:
+            parts.append(f"at {display.number(finding['where']['place'], 4)}")
+        if finding["note"]:
+            parts.append(finding["note"])
+        yield "  " + ", ".join(part for part in parts if part)
+
+
+def reading_text(source: Mapping[str, Any], reading: Mapping[str, Any]) -> str:
+    """How a document was understood, in lines."""
+    independent = reading["independent"]
+    way = f"{independent['name']} from {independent['from']} to {independent['to']}"
+    lines = [
+        str(source.get("title") or "Untitled problem"),
+        "",
+        _row("over", f"{way} [{independent['unit']}]" if independent["unit"] else way),
+        *(_row("unknown", unknown["sentence"]) for unknown in reading["unknowns"]),
+        _row("functional", reading["functional"]["sentence"]),
+        _row("freedom", reading["freedom"]["sentence"]),
+        *(_row("note", note) for note in reading["notes"]),
+    ]
+    return "\n".join(lines)
