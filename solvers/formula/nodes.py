@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 FUNCTIONS: dict[str, int] = {
     "sqrt": 1, "exp": 1, "log": 1, "sin": 1, "cos": 1, "tan": 1, "asin": 1, "acos": 1, "atan": 1, "atan2": 2,
@@ -135,3 +135,22 @@ def walk(node: Node) -> Iterator[Node]:
         node = stack.pop()
         yield node
         stack.extend(reversed(children(node)))
+
+
+def with_children(node: Node, parts: tuple[Node, ...]) -> Node:
+    """The same node with other direct parts, as many and in the same order as `children` gives."""
+    match node:
+        case At():
+            return replace(node, place=parts[0])
+        case Call():
+            return replace(node, arguments=parts)
+        case Negative():
+            return replace(node, operand=parts[0])
+        case Sum():
+            return replace(node, terms=parts)
+        case Product():
+            return replace(node, factors=parts)
+        case Power():
+            return replace(node, base=parts[0], exponent=parts[1])
+        case _:
+            return node
