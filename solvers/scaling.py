@@ -1,0 +1,121 @@
+"""Sizes of all quantities, found from the problem itself, so that no result depends on the units chosen."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+from numpy.typing import NDArray
+
+from solvers.limits import quantity_bounds
+
+if TYPE_CHECKING:
+    from solvers.functions import Compiled
+    from solvers.transcription import Layout
+
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True, slots=True)
+class Scales:
+    """One positive size per state, control, place, parameter and integral; all in SI."""
+
+    states: Array
+    controls: Array
+    places: Array
+    parameters: Array
+    integrals: Array
+
+
+@dataclass(frozen=True, slots=True)
+class RowSizes:
+    """Sizes of the outputs that have no natural scale: pointwise constraints, conditions, the functional."""
+
+    pointwise: Array
+    conditions: Array
+    value: float
+
+
+def _finite_size(lower: float, upper: float) -> float:
+    """The larger of two limits, of those that are finite; 0 where neither is."""
+    return max((abs(limit) for limit in (lower, upper) if np.isfinite(limit)), default=0.0)
+
+
+def find_scales(compiled: Compiled, where: Layout, z: Array) -> Scales:
+    """Sizes from values (SI) on a mesh: the largest value of each quantity, else its bounds, else its neighbours.
+
+    A quantity that is zero all along gets the size that its derivative or integral has over the whole range.
+    """
+    lowered = compiled.lowered
+    places = z[where.places]
+    span = max(float(np.ptp(places)), 1e-300)
+    sizes: dict[tuple[str, int], float] = {}
+    state_lower, state_upper, control_lower, control_upper = quantity_bounds(compiled)
+    for quantities, values, lower, upper in (
+        (lowered.states, np.vstack([z[where.nodes], z[where.inner]]), state_lower, state_upper),
+        (lowered.controls, z[where.controls], control_lower, control_upper),
+    ):
+        for index, quantity in enumerate(quantities):
+            size = float(np.abs(values[:, index]).max())
+            sizes[quantity] = size or _finite_size(lower[index], upper[index])
+    for name in {name for name, _ in sizes}:
+        orders = sorted(order for other, order in sizes if other == name)
+        known = [order for order in orders if sizes[name, order] > 0]
+        for order in orders:
+            if sizes[name, order] == 0:
+                near = min(known, key=lambda k: abs(k - order), default=None)
+                sizes[name, order] = span**-order if near is None else sizes[name, near] * span ** (near - order)
+    parameters = np.abs(z[where.parameters])
+    integrals = np.abs(z[where.integrals])
+    for index, parameter in enumerate(lowered.problem.parameters):
+        if parameters[index] == 0:
+            parameters[index] = _finite_size(parameter.lower, parameter.upper)
+    return Scales(
+        states=np.array([sizes[q] for q in lowered.states]),
+        controls=np.array([sizes[q] for q in lowered.controls]),
+        places=np.full(len(places), max(span, 1e-3 * float(np.abs(places).max()))),
+        parameters=np.where(parameters > 0, parameters, 1.0),
+        integrals=np.where(integrals > 0, integrals, 1.0),
+    )
+
+
+def find_row_sizes(compiled: Compiled, where: Layout, scales: Scales, z: Array) -> RowSizes:
+    """Sizes of the outputs from their slopes at values (SI) on a mesh: how much each changes over the scales."""
+    point, end = compiled.point, compiled.end
+    count = len(where.fractions)
+    constants = np.array(compiled.constants)
+    starts, ends = where.places[where.stretch], where.places[where.stretch + 1]
+    v = np.hstack([z[where.inner], z[where.controls], z[starts][:, None], z[ends][:, None],
+                   np.tile(z[where.parameters], (count, 1))])  # fmt: skip
+    d = np.hstack([where.fractions[:, None], np.tile(constants, (count, 1))])
+    sizes = np.concatenate([scales.states, scales.controls, [scales.places[0]] * 2, scales.parameters])
+    slopes = _row_sums(np.asarray(point.jacobian.map(count)(v.T, d.T)).T.reshape(count, -1), point.jacobian_rows,
+                       point.jacobian_columns, point.outputs, sizes)  # fmt: skip
+    y = np.concatenate([z[where.nodes[where.at_place]].ravel(), z[where.places], z[where.parameters],
+                        z[where.integrals]])  # fmt: skip
+    sizes = np.concatenate([np.tile(scales.states, len(where.places)), scales.places, scales.parameters,
+                            scales.integrals])  # fmt: skip
+    end_slopes = _row_sums(np.asarray(end.jacobian(y, constants)).reshape(1, -1), end.jacobian_rows,
+                           end.jacobian_columns, end.outputs, sizes)[0]  # fmt: skip
+    n = point.states
+    pointwise = slopes[:, n : n + point.constraints]
+    value = float(where.measures @ slopes[:, -1]) + float(end_slopes[-1])
+    return RowSizes(
+        pointwise=_positive(np.median(pointwise, axis=0)),
+        conditions=_positive(end_slopes[:-1]),
+        value=value if value > 0 and np.isfinite(value) else 1.0,
+    )
+
+
+def _row_sums(numbers: Array, rows: list[int], columns: list[int], outputs: int, sizes: Array) -> Array:
+    """Sum over a row of |slope| times the size of what it is the slope of; for each set of numbers."""
+    total = np.zeros((len(numbers), outputs))
+    finite = np.where(np.isfinite(numbers), np.abs(numbers), 0.0)
+    for entry, (row, column) in enumerate(zip(rows, columns, strict=True)):
+        total[:, row] += finite[:, entry] * sizes[column]
+    return total
+
+
+def _positive(sizes: Array) -> Array:
+    return np.where((sizes > 0) & np.isfinite(sizes), sizes, 1.0)

@@ -1,0 +1,207 @@
+"""The answer of a program as functions: states, controls and costates as piecewise polynomials, in SI.
+
+States are polynomials of degree K through the left node and the K points of each interval, controls and costates of
+degree K - 1 through the points.  Costates come from the multipliers of the collocation defects; see Garg et al. (2010),
+Automatica 46, section 4 (from memory): costate = -multiplier / quadrature weight.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from solvers.collocation import Family
+from solvers.curve import Curve
+from solvers.ipopt import Minimum, Start
+from solvers.lowering import primed
+from solvers.problem import Seek
+from solvers.transcription import Layout, Program
+
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True, slots=True)
+class Trajectory:
+    """One solved (or guessed) mesh, in SI (N intervals, M points, n states, m controls, c pointwise constraints).
+
+    `z` all variables; `breaks` (N+1); `points` (M) places of the points; `states` (M x n) and `controls` (M x m) there;
+    `nodes` ((N+1) x n) states at the breaks; `costates` (M x n) and `multipliers` (M x c: per unit of the independent
+    variable) are of the problem as a minimisation: negative of the user's for a maximum.
+    """
+
+    program: Program
+    z: Array
+    value: float
+    places: Array
+    parameters: Array
+    breaks: Array
+    points: Array
+    nodes: Array
+    states: Array
+    controls: Array
+    costates: Array
+    multipliers: Array
+    bound_multipliers: Array
+    row_multipliers: Array
+
+    def state_modes(self) -> list[Array]:
+        """Legendre coefficients of the states, (K+1) x n for each interval."""
+        return _modes(self.program, self.states, self.nodes)
+
+    def control_modes(self) -> list[Array]:
+        """Legendre coefficients of the controls, K x m for each interval."""
+        return _modes(self.program, self.controls, None)
+
+    def costate_modes(self) -> list[Array]:
+        """Legendre coefficients of the costates, K x n for each interval."""
+        return _modes(self.program, self.costates, None)
+
+
+def _modes(program: Program, values: Array, nodes: Array | None) -> list[Array]:
+    first = program.layout.first
+    modes = []
+    for k, interval in enumerate(program.mesh.intervals):
+        inside = values[first[k] : first[k + 1]]
+        if nodes is None:
+            modes.append(interval.scheme.control_modes @ inside)
+        else:
+            modes.append(interval.scheme.state_modes @ np.vstack([nodes[k], inside]))
+    return modes
+
+
+def trajectory(program: Program, minimum: Minimum) -> Trajectory:
+    """Read a solved program."""
+    where, scale = program.layout, program.scale
+    z = minimum.z * scale
+    places = z[where.places]
+    starts, ends = places[where.stretch], places[where.stretch + 1]
+    point = program.compiled.point
+    count = len(where.fractions)
+    sign_and_size = abs(program.value_scale)
+    rows = minimum.multipliers / program.row_scale * sign_and_size  # multipliers of the rows in SI
+    defects = rows[: count * point.states].reshape(count, point.states)
+    weights = np.concatenate([i.scheme.weights for i in program.mesh.intervals])
+    constraints = rows[program.rows.pointwise : program.rows.integrals].reshape(count, point.constraints)
+    return Trajectory(
+        program=program,
+        z=z,
+        value=minimum.value * program.value_scale,
+        places=places,
+        parameters=z[where.parameters],
+        breaks=program.mesh.breaks(places),
+        points=starts + where.fractions * (ends - starts),
+        nodes=z[where.nodes],
+        states=z[where.inner],
+        controls=z[where.controls],
+        costates=-defects / weights[:, None],
+        multipliers=constraints / (where.measures * (ends - starts))[:, None],
+        bound_multipliers=minimum.bound_multipliers * sign_and_size / scale,
+        row_multipliers=rows,
+    )
+
+
+def curve(path: Trajectory) -> Curve:
+    """Every unknown with its derivatives up to its order."""
+    lowered = path.program.compiled.lowered
+    functions: dict[str, tuple[Array, ...]] = {}
+    states, controls = path.state_modes(), path.control_modes()
+    widths = np.diff(path.breaks)
+    for index, quantity in enumerate(lowered.states):
+        functions[primed(quantity)] = tuple(modes[:, index] for modes in states)
+    for index, quantity in enumerate(lowered.controls):
+        functions[primed(quantity)] = tuple(modes[:, index] for modes in controls)
+    for name, order in lowered.given:
+        below = functions[primed((name, order - 1))]
+        functions[primed((name, order))] = tuple(
+            np.polynomial.legendre.legder(modes) * (2 / width) for modes, width in zip(below, widths, strict=True)
+        )
+    return Curve(path.breaks, functions)
+
+
+def costate_curve(path: Trajectory) -> Curve:
+    """The costates, and the multipliers of the pointwise constraints that bind, in the user's sense of better."""
+    compiled = path.program.compiled
+    sign = -1.0 if compiled.lowered.problem.seek is Seek.MAXIMUM else 1.0
+    modes = path.costate_modes()
+    functions = {
+        primed(quantity): tuple(sign * part[:, index] for part in modes)
+        for index, quantity in enumerate(compiled.lowered.states)
+    }
+    largest = np.abs(path.multipliers).max(initial=0.0)
+    multiplier_modes = _modes(path.program, path.multipliers, None)
+    for index, condition in enumerate(compiled.pointwise):
+        if np.abs(path.multipliers[:, index]).max(initial=0.0) > 1e-6 * largest:
+            functions[condition.label] = tuple(sign * part[:, index] for part in multiplier_modes)
+    return Curve(path.breaks, functions)
+
+
+def carry_over(path: Trajectory, program: Program) -> Start:
+    """The trajectory as a warm start on another mesh, with its multipliers."""
+    source, target = path.program, program
+    where, old = target.layout, source.layout
+    z = np.zeros(where.size)
+    z[where.places], z[where.parameters] = path.places, path.parameters
+    z[where.integrals] = path.z[old.integrals]
+    breaks = target.mesh.breaks(path.places)
+    starts, ends = path.places[where.stretch], path.places[where.stretch + 1]
+    points = starts + where.fractions * (ends - starts)
+    inside = _Sampler(path.breaks, points, breaks, where)
+    z[where.nodes] = inside.at_breaks(path.state_modes())
+    z[where.inner] = inside.at_points(path.state_modes())
+    z[where.controls] = inside.at_points(path.control_modes())
+
+    value_size = abs(target.value_scale)
+    rows = np.zeros(target.rows.count)
+    count, n = len(points), target.compiled.point.states
+    weights = np.concatenate([i.scheme.weights for i in target.mesh.intervals])
+    costates = inside.at_points(path.costate_modes())
+    rows[: count * n] = (-costates * weights[:, None]).ravel()
+    gauss = [k for k, i in enumerate(target.mesh.intervals) if i.scheme.family is Family.GAUSS]
+    if gauss:
+        rows[target.rows.ends : target.rows.pointwise] = costates[where.first[np.array(gauss) + 1] - 1].ravel()
+    density = inside.at_points(_modes(source, path.multipliers, None))
+    measures = where.measures * (ends - starts)
+    rows[target.rows.pointwise : target.rows.integrals] = (density * measures[:, None]).ravel()
+    rows[target.rows.integrals :] = path.row_multipliers[source.rows.integrals :]
+
+    bounds = np.zeros(where.size)
+    old_measures = old.measures * (path.places[old.stretch + 1] - path.places[old.stretch])
+    for new, before in ((where.inner, old.inner), (where.controls, old.controls)):
+        values = path.bound_multipliers[before] / old_measures[:, None]
+        bounds[new] = inside.nearest(path.points, values) * measures[:, None]
+    bounds[where.parameters] = path.bound_multipliers[old.parameters]
+    return Start(z / target.scale, bounds * target.scale / value_size, rows * target.row_scale / value_size)
+
+
+class _Sampler:
+    """Evaluates piecewise polynomials of one mesh at the points and breaks of another."""
+
+    def __init__(self, breaks: Array, points: Array, new_breaks: Array, where: Layout) -> None:
+        self.breaks, self.points, self.new_breaks, self.where = breaks, points, new_breaks, where
+
+    def _evaluate(self, modes: list[Array], places: Array) -> Array:
+        owner = np.clip(np.searchsorted(self.breaks, places, side="left") - 1, 0, len(modes) - 1)
+        values = np.empty((len(places), modes[0].shape[1]))
+        for k in np.unique(owner):
+            inside = owner == k
+            left, right = self.breaks[k], self.breaks[k + 1]
+            local = np.clip((2 * places[inside] - left - right) / (right - left), -1.0, 1.0)
+            values[inside] = np.polynomial.legendre.legvander(local, len(modes[k]) - 1) @ modes[k]
+        return values
+
+    def at_points(self, modes: list[Array]) -> Array:
+        """Values at the points of the new mesh."""
+        return self._evaluate(modes, self.points)
+
+    def at_breaks(self, modes: list[Array]) -> Array:
+        """Values at the breaks of the new mesh."""
+        return self._evaluate(modes, self.new_breaks)
+
+    def nearest(self, places: Array, values: Array) -> Array:
+        """Values of the nearest old point: multipliers of bounds may jump, so nothing is interpolated."""
+        middle = (places[1:] + places[:-1]) / 2
+        return values[np.searchsorted(middle, self.points)]
+
+

@@ -1,0 +1,138 @@
+"""The text of a unit: read into symbols with their exponents, and written again.  What a symbol means is not said here."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Iterable
+from fractions import Fraction
+
+Symbols = tuple[tuple[str, Fraction], ...]
+"""Names of units with their exponents, in the order written: `kg*m/s^2` is kg 1, m 1, s -2."""
+
+LARGEST_EXPONENT = 12
+
+_TOKEN = re.compile(r"\s*(?:(?P<name>[^\W\d_]+|°[CFR]?|%|‰)|(?P<integer>\d+)|(?P<sign>[*/^()·⋅×−-]))")
+_SAME = {"·": "*", "⋅": "*", "×": "*", "−": "-"}
+
+
+class UnitTextError(ValueError):
+    """A text that is no unit: `message` says what is wrong, `hint` what would be right."""
+
+    def __init__(self, message: str, hint: str) -> None:
+        super().__init__(message)
+        self.message = message
+        self.hint = hint
+
+
+def read_symbols(text: str) -> Symbols:
+    """The symbols of a unit text; "" and "1" have none.  Raises UnitTextError."""
+    return _Reader(text).whole() if text.strip() else ()
+
+
+def merged(symbols: Iterable[tuple[str, Fraction]]) -> Symbols:
+    """Each symbol once, with the sum of its exponents; what cancels is gone."""
+    total: dict[str, Fraction] = {}
+    for name, exponent in symbols:
+        total[name] = total.get(name, Fraction(0)) + exponent
+    return tuple((name, exponent) for name, exponent in total.items() if exponent)
+
+
+def raised(symbols: Symbols, exponent: Fraction) -> Symbols:
+    """The symbols of a power."""
+    return tuple((name, power * exponent) for name, power in symbols if exponent)
+
+
+def write_symbols(symbols: Symbols) -> str:
+    """`kg*m/s^2`; "" for no symbols.  Divisors follow one by one, as the reader takes them."""
+    above = [_power(name, exponent) for name, exponent in symbols if exponent > 0]
+    below = [_power(name, -exponent) for name, exponent in symbols if exponent < 0]
+    return "/".join(["*".join(above) or "1", *below]) if symbols else ""
+
+
+def _power(name: str, exponent: Fraction) -> str:
+    if exponent == 1:
+        return name
+    return f"{name}^{exponent}" if exponent.denominator == 1 else f"{name}^({exponent})"
+
+
+class _Reader:
+    """Recursive descent over the few signs that units need; depth is bounded by the length of the text."""
+
+    def __init__(self, text: str) -> None:
+        if len(text) > 100:
+            raise UnitTextError(f"a unit has {len(text)} characters; at most 100 are read", "write it shorter")
+        self.text = text
+        self.tokens = self.split(text.replace("²", "^2").replace("³", "^3"))
+        self.place = 0
+
+    def split(self, text: str) -> list[str]:
+        tokens, place = [], 0
+        text = text.rstrip()
+        while place < len(text):
+            match = _TOKEN.match(text, place)
+            if match is None:
+                strange = text[place:].lstrip()[0]
+                raise UnitTextError(f"'{strange}' cannot stand in a unit", "write units as in m/s^2 or kg*m/s^2")
+            tokens.append(_SAME.get(match[match.lastgroup or 0], match[match.lastgroup or 0]))
+            place = match.end()
+        return tokens
+
+    @property
+    def next(self) -> str:
+        return self.tokens[self.place] if self.place < len(self.tokens) else ""
+
+    def take(self) -> str:
+        token = self.next
+        self.place += 1
+        return token
+
+    def whole(self) -> Symbols:
+        """whole = product end"""
+        symbols = self.product()
+        if self.next == ")":
+            raise UnitTextError(f"a ')' closes nothing in '{self.text}'", "remove it")
+        if self.next:
+            before = self.tokens[self.place - 1]
+            raise UnitTextError(f"a sign is missing in '{self.text}'", f"write {before}*{self.next} or {before}/{self.next}")
+        return merged(symbols)
+
+    def product(self) -> Symbols:
+        """product = power (('*' | '/') power)*"""
+        symbols = self.power()
+        while self.next in ("*", "/"):
+            sign = Fraction(-1 if self.take() == "/" else 1)
+            symbols += raised(self.power(), sign)
+        return symbols
+
+    def power(self) -> Symbols:
+        """power = primary ['^' ['-'] integer | '^' '(' '-' integer ')']"""
+        symbols = self.primary()
+        if self.next != "^":
+            return symbols
+        self.take()
+        bracket = self.next == "(" and bool(self.take())
+        minus = self.next == "-" and bool(self.take())
+        digits = self.take()
+        if not digits.isdigit() or (bracket and self.take() != ")"):
+            raise UnitTextError(f"an exponent in '{self.text}' is no whole number", "write powers as in m^2 or s^-1")
+        if len(digits) > 2 or int(digits) > LARGEST_EXPONENT:
+            limit = f"the exponent {digits[:9]} is too large; the limit is {LARGEST_EXPONENT}"
+            raise UnitTextError(limit, "write powers as in m^2 or s^-1")
+        return raised(symbols, Fraction(-int(digits) if minus else int(digits)))
+
+    def primary(self) -> Symbols:
+        """primary = name | '1' | '(' product ')'"""
+        token = self.take()
+        if token == "(":
+            symbols = self.product()
+            if self.take() != ")":
+                raise UnitTextError(f"a '(' is never closed in '{self.text}'", "add the missing ')'")
+            return symbols
+        if token == "1":
+            return ()
+        if token.isdigit():
+            raise UnitTextError(f"the number {token} cannot stand in a unit", "a unit has names only, as in m/s^2 or 1/s")
+        if not token or token in "*/^)-":
+            where = f"'{token}'" if token else "the end"
+            raise UnitTextError(f"a unit is missing before {where} in '{self.text}'", "write units as in m/s^2 or 1/s")
+        return ((token, Fraction(1)),)
