@@ -1,0 +1,72 @@
+"""A plot before it is drawn: the still picture (SVG) and the living one (Plotly) are both made from it."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from solvers.curve import Array
+from web.palette import LINES, Line
+
+NOTHING: Array = np.empty(0)
+
+
+@dataclass(frozen=True, slots=True)
+class Trace:
+    """One line: `places` and `values` of the same length; NaN lifts the pen.  `number` picks colour and dash."""
+
+    label: str
+    places: Array
+    values: Array
+    number: int = 0
+    marked: bool = False
+
+    @property
+    def line(self) -> Line:
+        """Its style out of the palette."""
+        return LINES[self.number % len(LINES)]
+
+    @property
+    def colour(self) -> str:
+        """Name of the style sheet's variable that holds its colour."""
+        return f"--line-{self.number % len(LINES) + 1}"
+
+
+@dataclass(frozen=True, slots=True)
+class Plot:
+    """Lines over common axes.
+
+    `finding` says in one sentence what is to be seen; `table` holds some values of it (rows, 1 + lines), NaN where
+    there is none.  `rug` marks places on the lower axis.  `equal` asks for one scale on both axes.
+    """
+
+    key: str
+    heading: str
+    finding: str
+    across: str
+    up: str
+    traces: tuple[Trace, ...]
+    table: Array
+    table_headings: tuple[str, ...]
+    logarithmic: bool = False
+    equal: bool = False
+    whole_places: bool = False
+    rug: Array = field(default_factory=lambda: NOTHING)
+
+    def extent(self) -> tuple[float, float, float, float]:
+        """Least and greatest place, least and greatest value over all lines; never of width zero."""
+        places = np.concatenate([trace.places for trace in self.traces])
+        values = np.concatenate([trace.values for trace in self.traces])
+        return (*_widened(places), *_widened(values))
+
+
+def _widened(numbers: Array) -> tuple[float, float]:
+    finite = numbers[np.isfinite(numbers)]
+    if not len(finite):
+        return 0.0, 1.0
+    low, high = float(finite.min()), float(finite.max())
+    if high - low <= 1e-12 * max(abs(low), abs(high)):
+        reach = 0.5 * abs(low) or 1.0
+        return low - reach, high + reach
+    return low, high

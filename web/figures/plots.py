@@ -1,0 +1,247 @@
+"""The plots of a result: curve, path, derivatives, multipliers, mesh and error history."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from dataclasses import replace
+from typing import Any
+
+import numpy as np
+
+from solvers.curve import Array
+from web.display import number
+from web.display import unit as printed
+from web.figures import findings
+from web.figures.plot import Plot, Trace
+from web.figures.series import jumps, series
+from web.palette import LINES
+from web.trajectory import Trajectory, read_costates, read_trajectory
+
+LENGTHS = frozenset(("m", "mm", "cm", "km", "um", "µm", "μm", "nm", "dm", "in", "ft", "inch", "foot", "yd", "mi"))
+TABLE_ROWS = 9
+MOST_ALIKE = 5.0
+"""One scale on both axes only where height and width differ by no more than this factor."""
+
+_ORDINALS = ("", "First", "Second", "Third")
+
+
+def plots(result: Mapping[str, Any]) -> tuple[Plot, ...]:
+    """All plots that a result document allows, the most telling first; () where there is no curve and no mesh."""
+    trajectory = read_trajectory(result)
+    made: list[Plot] = []
+    if trajectory is not None:
+        made += _path(trajectory)
+        made += _functions(trajectory)
+        made += _derivatives(trajectory)
+        costates = read_costates(result)
+        if costates is not None:
+            named = {name: f"costate of {name}" for name in trajectory.names}
+            made += _grouped(costates, costates.names, 0, "costate", "Multipliers", named)
+    made += _history(result)
+    if trajectory is not None:
+        made += _mesh(trajectory)
+    return tuple(made)
+
+
+def bracketed(name: str, unit: str) -> str:
+    """A label as print has it: `v [m/s²]`."""
+    return f"{name} [{printed(unit)}]" if unit else name
+
+
+def _functions(trajectory: Trajectory) -> Iterable[Plot]:
+    return _grouped(trajectory, trajectory.names, 0, "curve", "Curve")
+
+
+def _derivatives(trajectory: Trajectory) -> Iterable[Plot]:
+    """Each derivative that the result stores: what a limit or a smoothness condition may be on."""
+    for order in (1, 2, 3):
+        stored = [
+            name
+            for name in trajectory.names
+            if any(name + "'" * order in arc.curve.functions for arc in trajectory.arcs)
+        ]
+        yield from _grouped(trajectory, stored, order, f"derivative-{order}", f"{_ORDINALS[order]} derivative")
+
+
+def _grouped(
+    trajectory: Trajectory, names: Iterable[str], order: int, key: str, heading: str, labels: Mapping[str, str] = {}
+) -> Iterable[Plot]:
+    """One plot for each unit: what is measured alike is drawn together."""
+    groups: dict[str, list[str]] = {}
+    for name in names:
+        groups.setdefault(trajectory.unit_of(name, order), []).append(name)
+    for unit, group in groups.items():
+        for start in range(0, len(group), len(LINES)):
+            some = group[start : start + len(LINES)]
+            yield _over_independent(trajectory, some, order, unit, f"{key}-{some[0]}", heading, labels)
+
+
+def _over_independent(
+    trajectory: Trajectory,
+    names: list[str],
+    order: int,
+    unit: str,
+    key: str,
+    heading: str,
+    labels: Mapping[str, str],
+) -> Plot:
+    traces, told = [], []
+    independent = (trajectory.independent, trajectory.unit)
+    for count, name in enumerate(names):
+        label = labels.get(name, name) + "'" * order
+        places, values = series(trajectory, name, order)
+        traces.append(Trace(label, places, values, count))
+        told.append(
+            findings.switching(label, unit, jumps(trajectory, name, order), independent)
+            or findings.course(label, unit, places, values, independent)
+        )
+    together = ", ".join(trace.label for trace in traces)
+    plot = Plot(
+        key=_identifier(key),
+        heading=f"{heading}: {together}",
+        finding=findings.sentence(told),
+        across=bracketed(*independent),
+        up=bracketed(together if len(together) < 30 else "value", unit),
+        traces=tuple(traces),
+        table=_some_rows(trajectory, [(name, order) for name in names]),
+        table_headings=(bracketed(*independent), *(bracketed(trace.label, unit) for trace in traces)),
+        equal=key.startswith("curve") and unit == trajectory.unit and unit in LENGTHS,
+    )
+    return _unless_thin(plot)
+
+
+def _path(trajectory: Trajectory) -> Iterable[Plot]:
+    """The way in the plane, where two unknowns are both lengths in the same unit and all else is not."""
+    flat = [name for name in trajectory.names if trajectory.unit_of(name) in LENGTHS]
+    if len(flat) != 2 or trajectory.unit in LENGTHS:
+        return
+    first, second = flat
+    unit = trajectory.unit_of(first)
+    if trajectory.unit_of(second) != unit or any(
+        not trajectory.pieces(arc, n, 0) for arc in trajectory.arcs for n in flat
+    ):
+        return
+    every = np.union1d(series(trajectory, first)[0], series(trajectory, second)[0])
+    pair = [
+        np.concatenate(
+            [
+                trajectory.evaluate(arc, name, 0, every[(every >= arc.start) & (every <= arc.end)])
+                for arc in trajectory.arcs
+            ]
+        )
+        for name in flat
+    ]
+    independent = (trajectory.independent, trajectory.unit)
+    told = [
+        findings.course(name, unit, every, values, independent)
+        for name, values in zip(flat, pair, strict=True)
+        if len(values) == len(every)
+    ]
+    plot = Plot(
+        key="path",
+        heading=f"Path: {second} over {first}",
+        finding=findings.sentence(told) or f"The path of {first} and {second}.",
+        across=bracketed(first, unit),
+        up=bracketed(second, unit),
+        traces=(Trace(f"{second} over {first}", pair[0], pair[1]),),
+        table=_some_rows(trajectory, [(first, 0), (second, 0)]),
+        table_headings=(bracketed(*independent), bracketed(first, unit), bracketed(second, unit)),
+        equal=True,
+    )
+    yield _unless_thin(plot)
+
+
+def _history(result: Mapping[str, Any]) -> Iterable[Plot]:
+    meshes = (result.get("provenance") or {}).get("meshes") or []
+    told = [(count, mesh["error"]) for count, mesh in enumerate(meshes, start=1) if (mesh.get("error") or 0) > 0]
+    if len(told) < 2:
+        return
+    table = np.array(told, dtype=float)
+    first, last = table[0, 1], table[-1, 1]
+    verb = "fell" if last < first else "did not fall: it went"
+    yield Plot(
+        key="error-history",
+        heading="Error of each mesh",
+        finding=(
+            f"The relative error estimate {verb} from {number(first, 2)} to {number(last, 2)} "
+            f"over {len(meshes)} meshes."
+        ),
+        across="mesh",
+        up="relative error estimate",
+        traces=(Trace("relative error estimate", table[:, 0], table[:, 1], 1, marked=True),),
+        table=table,
+        table_headings=("mesh", "relative error estimate"),
+        logarithmic=True,
+        whole_places=True,
+    )
+
+
+def _mesh(trajectory: Trajectory) -> Iterable[Plot]:
+    """Where the intervals are short the curve was hard."""
+    edges = np.concatenate([arc.curve.breaks for arc in trajectory.arcs])
+    widths = np.concatenate([np.diff(arc.curve.breaks) for arc in trajectory.arcs])
+    lefts = np.concatenate([arc.curve.breaks[:-1] for arc in trajectory.arcs])
+    if len(widths) < 2:
+        return
+    shown = np.unique(np.linspace(0, len(widths) - 1, min(len(widths), 1000)).astype(int))
+    rows = np.unique(np.linspace(0, len(widths) - 1, min(len(widths), TABLE_ROWS)).astype(int))
+    unit = trajectory.unit
+    yield Plot(
+        key="mesh",
+        heading="Mesh",
+        finding=_mesh_finding(trajectory, lefts, widths),
+        across=bracketed(trajectory.independent, unit),
+        up=bracketed("length of the interval", unit),
+        traces=(
+            Trace(
+                "length of the interval",
+                np.column_stack([lefts, lefts + widths])[shown].ravel(),
+                np.repeat(widths[shown], 2),
+                5,
+            ),
+        ),
+        table=np.column_stack([lefts, widths])[rows],
+        table_headings=(bracketed("interval begins at", unit), bracketed("length", unit)),
+        logarithmic=float(widths.max() / widths.min()) > 20,
+        rug=edges if len(edges) <= 400 else edges[:: len(edges) // 400 + 1],
+    )
+
+
+def _mesh_finding(trajectory: Trajectory, lefts: Array, widths: Array) -> str:
+    shortest, longest = (findings.amount(float(width), trajectory.unit) for width in (widths.min(), widths.max()))
+    if shortest == longest:
+        return f"{len(widths)} intervals, each {longest} long."
+    begin = findings.amount(float(lefts[widths.argmin()]), trajectory.unit)
+    return (
+        f"{len(widths)} intervals; the shortest is {shortest} long and begins at {trajectory.independent} = {begin}, "
+        f"the longest is {longest} long."
+    )
+
+
+def _some_rows(trajectory: Trajectory, columns: list[tuple[str, int]]) -> Array:
+    """A few evenly spaced rows over all arcs; at a junction the arc that ends there speaks."""
+    places = np.linspace(trajectory.start, trajectory.end, TABLE_ROWS)
+    owner = np.searchsorted([arc.end for arc in trajectory.arcs[:-1]], places, side="left")
+    parts = [
+        np.column_stack(
+            [places[owner == count], *(trajectory.evaluate(arc, n, o, places[owner == count]) for n, o in columns)]
+        )
+        for count, arc in enumerate(trajectory.arcs)
+    ]
+    return np.concatenate(parts)
+
+
+def _unless_thin(plot: Plot) -> Plot:
+    """The same plot with free scales where one scale would squeeze it to a line."""
+    if not plot.equal:
+        return plot
+    left, right, low, high = plot.extent()
+    ratio = (high - low) / (right - left)
+    if 1 / MOST_ALIKE <= ratio <= MOST_ALIKE:
+        return plot
+    return replace(plot, equal=False)
+
+
+def _identifier(text: str) -> str:
+    """Letters, digits and hyphens only, so that it can stand in an address and in a style rule."""
+    return "".join(c if c.isalnum() and c.isascii() else f"-{ord(c):x}-" if c != "-" else c for c in text)

@@ -1,0 +1,71 @@
+"""The specification that Plotly draws a plot from, as plain data.
+
+Colours are names of the style sheet's variables (`--line-1`): `figures.js` puts in what they stand for on the paper
+that the reader has chosen, and again when that changes.
+"""
+
+from __future__ import annotations
+
+import json
+import math
+from typing import Any
+
+from solvers.curve import Array
+from web.figures.plot import Plot
+
+DIGITS = 7
+"""Enough for a picture; the tables and the result document hold the exact numbers."""
+
+
+def spec(plot: Plot) -> dict[str, Any]:
+    """`data` and `layout`; every number is finite or None, which lifts the pen."""
+    several = len(plot.traces) > 1
+    data = [
+        {
+            "type": "scatter",
+            "mode": "lines+markers" if trace.marked else "lines",
+            "name": trace.label,
+            "x": _numbers(trace.places),
+            "y": _numbers(trace.values),
+            "line": {"color": trace.colour, "dash": trace.line.dash, "width": 2.2},
+            "connectgaps": False,
+            "hovertemplate": f"{_escaped(plot.across)} = %{{x}}<br>{_escaped(trace.label)} = %{{y}}<extra></extra>",
+        }
+        for trace in plot.traces
+    ]
+    across: dict[str, Any] = {"title": {"text": _escaped(plot.across)}, "zeroline": False}
+    up: dict[str, Any] = {"title": {"text": _escaped(plot.up)}, "zeroline": False, "exponentformat": "power"}
+    across["exponentformat"] = "power"
+    if plot.logarithmic:
+        up |= {"type": "log", "dtick": 1} if _decades(plot) < 12 else {"type": "log"}
+    if plot.equal:
+        up |= {"scaleanchor": "x", "scaleratio": 1}
+    if plot.whole_places:
+        across |= {"dtick": max(1, math.ceil(max(len(trace.places) for trace in plot.traces) / 12))}
+    layout: dict[str, Any] = {"xaxis": across, "yaxis": up, "showlegend": several}
+    if len(plot.rug):
+        layout["shapes"] = [
+            {"type": "line", "xref": "x", "yref": "paper", "x0": x, "x1": x, "y0": 0, "y1": 0.03, "line": {"width": 1}}
+            for x in _numbers(plot.rug)
+        ]
+    return {"data": data, "layout": layout}
+
+
+def data_block(plot: Plot) -> str:
+    """The specification as text for a `<script type="application/json">`: no `<` that could end it."""
+    text = json.dumps(spec(plot), ensure_ascii=False, allow_nan=False, separators=(",", ":"))
+    return text.replace("<", "\\u003c").replace(">", "\\u003e").replace("&", "\\u0026")
+
+
+def _decades(plot: Plot) -> float:
+    _, _, low, high = plot.extent()
+    return math.log10(high / low) if low > 0 else 0.0
+
+
+def _numbers(numbers: Array) -> list[float | None]:
+    return [float(f"{value:.{DIGITS}g}") if math.isfinite(value) else None for value in numbers.tolist()]
+
+
+def _escaped(text: str) -> str:
+    """Plotly reads a few tags in its texts; a user's `<` is no tag."""
+    return text.replace("&", "&amp;").replace("<", "&lt;").replace(">", "&gt;")
