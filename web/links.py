@@ -17,8 +17,8 @@ API = "/api/v1"
 API_CHECK = f"{API}/check"
 API_RUNS = f"{API}/runs"
 API_DESCRIPTION = f"{API}/openapi.json"
-PROBLEM_SCHEMA = f"{API}/schemas/problem"
-RESULT_SCHEMA = f"{API}/schemas/result"
+PROBLEM_SCHEMA = f"{API}/schema/problem.json"
+RESULT_SCHEMA = f"{API}/schema/result.json"
 
 
 def static(path: str) -> str:

@@ -1,0 +1,1 @@
+"""The problem document as rows of a form, and back: the table of sections, the reader, the filler, the row commands."""

@@ -1,0 +1,118 @@
+"""Problem document -> fields of the composer.  What the form cannot show is carried along in hidden fields."""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Mapping
+from typing import Any
+
+from web.form.reading import REST
+from web.form.sections import HEAD, SECTIONS, Column, Kind, Section, Shape
+
+MOST_FIELDS = 900
+"""More fields than this are slow to fill in, and servers refuse to read them: such a document is edited as JSON."""
+
+
+def form_from_document(document: Mapping[str, Any]) -> dict[str, str]:
+    """The fields that show the document; `read_form` of them gives an equal document back."""
+    rest = dict(document)
+    fields: dict[str, str] = {}
+    if rest.get("format") == 1:
+        del rest["format"]
+    for column in HEAD:
+        if isinstance(rest.get(column.member), str):
+            fields[column.key] = rest.pop(column.member)
+    for section in SECTIONS:
+        fill = {Shape.MAP: _fill_map, Shape.LIST: _fill_list, Shape.RECORD: _fill_record}[section.shape]
+        shown = fill(section, rest.get(section.name))
+        if shown is not None:
+            fields.update(shown)
+            rest.pop(section.name, None)
+    if rest:
+        fields[REST] = _compact(rest)
+    return fields
+
+
+def kept_back(fields: Mapping[str, str]) -> tuple[str, ...]:
+    """Names of the members that the document has and the form does not show."""
+    return tuple(json.loads(fields.get(REST, "") or "{}"))
+
+
+def _fill_map(section: Section, content: Any) -> dict[str, str] | None:
+    if content is None:
+        return {}
+    if not isinstance(content, dict):
+        return None
+    fields: dict[str, str] = {}
+    for number, (name, entry) in enumerate(content.items()):
+        row = f"{section.name}.{number}"
+        shown = _fill_entry(section, row, entry)
+        if shown is None or not name.strip():
+            return None
+        fields |= {f"{row}.name": name, **shown}
+    return fields
+
+
+def _fill_list(section: Section, content: Any) -> dict[str, str] | None:
+    if content is None:
+        return {}
+    (column,) = section.columns
+    if not isinstance(content, list) or not all(isinstance(item, str) and item.strip() for item in content):
+        return None
+    return {f"{section.name}.{number}.{column.key}": item for number, item in enumerate(content)}
+
+
+def _fill_record(section: Section, content: Any) -> dict[str, str] | None:
+    if content is None:
+        return {}
+    return _fill_entry(section, section.name, content)
+
+
+def _fill_entry(section: Section, row: str, entry: Any) -> dict[str, str] | None:
+    """Fields of one row or record; None where the entry is not of the shape that the section shows."""
+    (first, *_) = section.columns
+    if not first.member:
+        text = _text(entry, first)
+        return None if text is None else {f"{row}.{first.key}": text}
+    if not isinstance(entry, dict):
+        return None
+    rest = dict(entry)
+    fields: dict[str, str] = {}
+    pair = rest.get("within")
+    for column in section.columns:
+        member, _, index = column.member.partition("/")
+        if not index:
+            text = _text(rest[member], column) if member in rest else None
+            if text is not None:
+                fields[f"{row}.{column.key}"] = text
+                del rest[member]
+        elif isinstance(pair, list) and len(pair) == 2 and all(_bound(item) for item in pair) and pair != [None, None]:
+            rest.pop(member, None)
+            if pair[int(index)] is not None:
+                fields[f"{row}.{column.key}"] = _text(pair[int(index)], column) or ""
+    if rest:
+        fields[f"{row}.{REST}"] = _compact(rest)
+    return fields
+
+
+def _bound(item: Any) -> bool:
+    return item is None or (isinstance(item, str) and bool(item.strip())) or _is_number(item)
+
+
+def _text(value: Any, column: Column) -> str | None:
+    """The text that a field shows for a value; None where no text of this field would give the value back."""
+    if column.kind is Kind.CHOICE:
+        return value if value in column.choices else None
+    if isinstance(value, str):
+        return value if value.strip() else None
+    if column.kind in (Kind.VALUE, Kind.GUESS) and (_is_number(value) or isinstance(value, list | dict)):
+        return _compact(value)
+    return None
+
+
+def _is_number(value: Any) -> bool:
+    return isinstance(value, int | float) and not isinstance(value, bool)
+
+
+def _compact(value: Any) -> str:
+    return json.dumps(value, ensure_ascii=False)
