@@ -8,12 +8,6 @@
 
 A state changes only by compare-and-set on (id, attempt): the answer of an attempt that is no longer the current one
 changes nothing.
-
-    StoreError                 the database cannot be used now
-    +-- StoreFullError         no room on the disk: nothing was accepted or changed
-    IdempotencyError           the key was used with another body
-    QueueFullError             too many runs are waiting
-    CursorError                a list cursor that this store did not make
 """
 
 from __future__ import annotations
@@ -21,125 +15,45 @@ from __future__ import annotations
 import base64
 import binascii
 import json
-import secrets
 import sqlite3
 import threading
 import time
 import zlib
 from collections.abc import Iterator, Mapping, Sequence
 from contextlib import contextmanager, nullcontext
-from dataclasses import dataclass, fields
-from enum import StrEnum
+from dataclasses import fields
 from pathlib import Path
 from typing import Any
 
 import sqlalchemy as sql
 from sqlalchemy.engine import Connection, Row
 
+from service.run import (
+    CursorError,
+    Figures,
+    IdempotencyError,
+    Page,
+    QueueFullError,
+    Run,
+    State,
+    StoreError,
+    StoreFullError,
+)
 from service.schema import documents, results, runs, upgrade
 
-
-class State(StrEnum):
-    """How far a run is."""
-
-    WAITING = "waiting"
-    SOLVING = "solving"
-    FINISHED = "finished"  # the solver came to an end of its own, with whatever verdict
-    FAILED = "failed"  # no answer: a limit, a crash, an error of ours; `reason` says which
-    STOPPED = "stopped"  # cancelled; there may be a result with the best curve so far
-
-    @property
-    def ended(self) -> bool:
-        """True where nothing more will happen."""
-        return self not in (State.WAITING, State.SOLVING)
-
-
-@dataclass(frozen=True, slots=True)
-class Run:
-    """One problem document being solved.  Times are seconds since 1970; numbers of the result in the user's units."""
-
-    id: str
-    title: str
-    document_hash: str  # of the canonical document: equal where the same problem is meant
-    created: float
-    updated: float
-    state: State = State.WAITING
-    priority: int = 0  # higher first
-    time_limit: float = 60.0  # seconds that the document grants its solver
-    key: str | None = None  # idempotency key
-    key_hash: str | None = None  # of the body that came with it
-    attempt: int = 0  # which one this is; 0: none yet
-    deaths: int = 0  # workers that died of it
-    owner: str | None = None  # who solves it, until `lease`
-    lease: float | None = None
-    cancel_asked: bool = False
-    verdict: str | None = None
-    value: float | None = None
-    value_error: float | None = None
-    value_unit: str | None = None
-    seconds: float | None = None  # of work in the worker
-    reason: str | None = None  # why it failed, or how the last worker died
-
-
-@dataclass(frozen=True, slots=True)
-class Page:
-    """A part of a list; `after` continues it, None at its end."""
-
-    runs: tuple[Run, ...]
-    after: str | None
-
-
-@dataclass(frozen=True, slots=True)
-class Figures:
-    """What a result says in one line."""
-
-    verdict: str | None = None
-    value: float | None = None
-    value_error: float | None = None
-    value_unit: str | None = None
-    seconds: float | None = None
-
-
-class StoreError(Exception):
-    """The database cannot be used now."""
-
-
-class StoreFullError(StoreError):
-    """There is no room on the disk: nothing was accepted or changed."""
-
-
-class IdempotencyError(Exception):
-    """The idempotency key was used before, with another body."""
-
-
-class QueueFullError(Exception):
-    """Too many runs are waiting."""
-
-
-class CursorError(ValueError):
-    """A cursor that this store did not make."""
-
-
-_ALPHABET = "23456789abcdefghjkmnpqrstuvwxyz"  # no look-alikes: addresses are read out and typed
-_LENGTH = 26  # 31^26 > 2^128
 _COMPRESS_FROM = 8 * 1024  # bytes
 _COLUMNS = [runs.c[field.name] for field in fields(Run)]
-_UNENDED = (State.WAITING.value, State.SOLVING.value)
 
-
-def new_run(
-    title: str,
-    document_hash: str,
-    *,
-    time_limit: float = 60.0,
-    priority: int = 0,
-    key: str | None = None,
-    key_hash: str | None = None,
-) -> Run:
-    """A run that waits, with an address nobody can guess."""
-    id = "".join(secrets.choice(_ALPHABET) for _ in range(_LENGTH))
-    now = time.time()
-    return Run(id, title, document_hash, now, now, priority=priority, time_limit=time_limit, key=key, key_hash=key_hash)
+# Built once: building a statement takes longer than SQLite needs for it.
+_INSERT_RUN = runs.insert()
+_INSERT_DOCUMENT = documents.insert()
+_INSERT_RESULT = results.insert()
+_SELECT = sql.select(*_COLUMNS)
+_BY_ID = _SELECT.where(runs.c.id == sql.bindparam("sought"))
+_BY_KEY = _SELECT.where(runs.c.key == sql.bindparam("sought"))
+_DOCUMENT = sql.select(documents.c.document).where(documents.c.run_id == sql.bindparam("sought"))
+_RESULT = sql.select(results.c.document, results.c.compressed).where(results.c.run_id == sql.bindparam("sought"))
+_WAITING = sql.select(sql.func.count()).where(runs.c.state == State.WAITING.value)
 
 
 class Store:
@@ -170,17 +84,15 @@ class Store:
         """
         try:
             with self._write() as connection:
-                if run.key is not None and (earlier := _one(connection, runs.c.key == run.key)):
+                if run.key is not None and (earlier := _one(connection, _BY_KEY, run.key)):
                     return _same_body(earlier, run)
                 if queue is not None and run.state is State.WAITING:
-                    waiting = sql.select(sql.func.count()).where(runs.c.state == State.WAITING.value)
-                    if connection.execute(waiting).scalar_one() >= queue:
-                        raise QueueFullError(f"{queue} runs are waiting already")
-                connection.execute(runs.insert().values(_row(run)))
-                connection.execute(documents.insert().values(run_id=run.id, document=document))
+                    _refuse_when_full(connection, queue)
+                connection.execute(_INSERT_RUN, _row(run))
+                connection.execute(_INSERT_DOCUMENT, {"run_id": run.id, "document": document})
         except sql.exc.IntegrityError:
             # The key came in through another server between the look and the insert.
-            if run.key is not None and (winner := self._get(runs.c.key == run.key)):
+            if run.key is not None and (winner := self._get(_BY_KEY, run.key)):
                 return _same_body(winner, run)
             raise
         return run
@@ -189,29 +101,25 @@ class Store:
 
     def get(self, id: str) -> Run | None:
         """The run, or None."""
-        return self._get(runs.c.id == id)
+        return self._get(_BY_ID, id)
 
     def document(self, id: str) -> str | None:
         """The problem document of a run, as it was accepted."""
         with self._read() as connection:
-            text: str | None = connection.execute(
-                sql.select(documents.c.document).where(documents.c.run_id == id)
-            ).scalar_one_or_none()
+            text: str | None = connection.execute(_DOCUMENT, {"sought": id}).scalar_one_or_none()
         return text
 
     def result(self, id: str) -> bytes | None:
         """The result document of a run as JSON text in UTF-8, or None."""
         with self._read() as connection:
-            row = connection.execute(
-                sql.select(results.c.document, results.c.compressed).where(results.c.run_id == id)
-            ).one_or_none()
+            row = connection.execute(_RESULT, {"sought": id}).one_or_none()
         if row is None:
             return None
         return zlib.decompress(row.document) if row.compressed else bytes(row.document)
 
     def list(self, *, limit: int = 50, after: str | None = None, state: State | None = None) -> Page:
         """Runs, the newest first, from the place where `after` points.  Raises CursorError."""
-        query = sql.select(*_COLUMNS).order_by(runs.c.created.desc(), runs.c.id.desc()).limit(limit + 1)
+        query = _SELECT.order_by(runs.c.created.desc(), runs.c.id.desc()).limit(limit + 1)
         if after is not None:
             query = query.where(sql.tuple_(runs.c.created, runs.c.id) < sql.tuple_(*_read_cursor(after)))
         if state is not None:
@@ -224,8 +132,7 @@ class Store:
     def find_by_hash(self, document_hash: str) -> Run | None:
         """The newest finished run with a verdict on the same problem, or None."""
         query = (
-            sql.select(*_COLUMNS)
-            .where(runs.c.document_hash == document_hash, runs.c.state == State.FINISHED.value)
+            _SELECT.where(runs.c.document_hash == document_hash, runs.c.state == State.FINISHED.value)
             .where(runs.c.verdict.is_not(None))
             .order_by(runs.c.created.desc())
             .limit(1)
@@ -246,7 +153,7 @@ class Store:
         try:
             with self._write() as connection:
                 # Nothing remains, but pages are written: a full disk or a lost mount shows.
-                connection.execute(runs.insert().values(_row(Run("", "", "", 0.0, 0.0))))
+                connection.execute(_INSERT_RUN, _row(Run("", "", "", 0.0, 0.0)))
                 connection.execute(runs.delete().where(runs.c.id == ""))
         except StoreError:
             return False
@@ -298,7 +205,7 @@ class Store:
         with self._write() as connection:
             if not _move(connection, id, attempt, state, values):
                 return False
-            connection.execute(results.insert().values(run_id=id, compressed=int(large), document=content))
+            connection.execute(_INSERT_RESULT, {"run_id": id, "compressed": int(large), "document": content})
         return True
 
     def fail(self, id: str, attempt: int, reason: str, *, deaths: int = 0, seconds: float | None = None) -> bool:
@@ -348,7 +255,7 @@ class Store:
         with self._write() as connection:
             if not connection.execute(waiting).rowcount:
                 connection.execute(solving)
-            return _one(connection, runs.c.id == id)
+            return _one(connection, _BY_ID, id)
 
     def delete(self, id: str) -> bool:
         """Forget a run with its document and result, whatever its state.  False where unknown."""
@@ -357,9 +264,9 @@ class Store:
 
     # Connections
 
-    def _get(self, condition: sql.ColumnElement[bool]) -> Run | None:
+    def _get(self, query: sql.Select[Any], sought: str) -> Run | None:
         with self._read() as connection:
-            return _one(connection, condition)
+            return _one(connection, query, sought)
 
     @contextmanager
     def _read(self) -> Iterator[Connection]:
@@ -383,9 +290,14 @@ def _move(connection: Connection, id: str, attempt: int, state: State, values: M
     return connection.execute(change).rowcount == 1
 
 
-def _one(connection: Connection, condition: sql.ColumnElement[bool]) -> Run | None:
-    row = connection.execute(sql.select(*_COLUMNS).where(condition)).one_or_none()
+def _one(connection: Connection, query: sql.Select[Any], sought: str) -> Run | None:
+    row = connection.execute(query, {"sought": sought}).one_or_none()
     return None if row is None else _run(row)
+
+
+def _refuse_when_full(connection: Connection, queue: int) -> None:
+    if connection.execute(_WAITING).scalar_one() >= queue:
+        raise QueueFullError(f"{queue} runs are waiting already")
 
 
 def _same_body(earlier: Run, run: Run) -> Run:

@@ -4,10 +4,14 @@ from __future__ import annotations
 
 import heapq
 import itertools
+import logging
 import threading
+from functools import partial
 
 from service.engine.records import Capacity, Ending, Job, Outcome, Sink
 from service.engine.slot import Slot
+
+_log = logging.getLogger(__name__)
 
 _IDLE_SECONDS = 1.0  # how often a slot without a job looks after its child
 
@@ -80,11 +84,16 @@ class LocalEngine:
         slot.tend()
         while (job := self._next(slot)) is not None:
             try:
-                outcome = slot.run(job, lambda event, job=job: self._sink.progress(job, event))  # type: ignore[misc]
-            finally:
-                with self._changed:
-                    del self._running[job.id]
-            self._sink.ended(job, outcome)
+                outcome = slot.run(job, partial(self._sink.progress, job))
+            except Exception as error:  # an error of ours must cost neither the thread nor the job's end
+                _log.exception("job %s", job.id)
+                outcome = Outcome(Ending.RAISED, reason=f"internal error: {error!r}")
+            with self._changed:
+                del self._running[job.id]
+            try:
+                self._sink.ended(job, outcome)
+            except Exception:
+                _log.exception("job %s", job.id)
             if not slot.alive:
                 slot.tend()
         slot.close()
