@@ -10,6 +10,7 @@ from dataclasses import dataclass
 from typing import Any
 
 from web.form.sections import HEAD, ORDER, SECTIONS, Column, Kind, Section, Shape
+from web.pointer import token
 
 REST = "rest"
 """Key of the hidden fields that hold, as JSON, what the form has no field for."""
@@ -89,11 +90,6 @@ def field_of(pointer: str, places: Mapping[str, str]) -> str:
             return places[pointer]
         pointer = pointer.rpartition("/")[0]
     return ""
-
-
-def token(name: str) -> str:
-    """A name as a part of a JSON pointer (RFC 6901)."""
-    return name.replace("~", "~0").replace("/", "~1")
 
 
 def _read_map(

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any, ClassVar
@@ -17,6 +18,7 @@ from web.form.understood import understood
 from web.marked import Complaint, complaint
 from web.pages.page import Page, told
 from web.pages.reading import Reading, reading_view
+from web.pointer import at
 
 
 @dataclass(frozen=True, slots=True)
@@ -129,8 +131,15 @@ def _complaints(draft: Draft, given: Sequence[Mapping[str, Any]]) -> tuple[Compl
 
 
 def _concerned(draft: Draft, given: Mapping[str, Any], field: str) -> str:
-    """The text that the span of a complaint counts in: the formula itself, also where the text area shows it all."""
-    return draft.fields.get(field, "") if draft.view == FORM else str(given.get("text") or "")
+    """The text that the span of a complaint counts in: a field, the formula in the JSON text, or that text itself."""
+    if draft.view == FORM:
+        return draft.fields.get(field, "")
+    pointer = str(given.get("pointer") or "")
+    try:
+        found = at(json.loads(draft.text), pointer)
+    except (ValueError, RecursionError):
+        return draft.text
+    return found if isinstance(found, str) else ""
 
 
 def _status(complaints: Sequence[Complaint], reading: Mapping[str, Any] | None) -> tuple[str, str]:
