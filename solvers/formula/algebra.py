@@ -1,0 +1,211 @@
+"""Sums, products and powers that tidy up as they are built: 0 and 1 vanish, numbers fold, like factors collect.
+
+Light on purpose: nothing is multiplied out and no order is changed, so that a derived formula still looks like the one
+that it came from.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterable
+from dataclasses import dataclass, replace
+from fractions import Fraction
+
+from solvers.formula.nodes import (
+    NOWHERE,
+    Call,
+    Negative,
+    Node,
+    Number,
+    Power,
+    Product,
+    Sum,
+    children,
+    with_children,
+)
+
+ZERO = Number(0.0, "0")
+ONE = Number(1.0, "1")
+
+_HALF = Fraction(1, 2)
+_LARGEST = 10**9
+"""Folded numbers stay below this in numerator and denominator; larger ones would not be readable."""
+
+
+def bare(tree: Node) -> Node:
+    """The tree without its places in the text, so that equal formulas are equal."""
+    return replace(with_children(tree, tuple(bare(part) for part in children(tree))), span=NOWHERE)
+
+
+def add(terms: Iterable[Node]) -> Node:
+    """The sum, with like terms collected.  The trees are bare."""
+    collected: dict[Node, _Monomial] = {}
+    for node in terms:
+        for term in _terms(node):
+            key = term.with_coefficient(Fraction(1), False).node()
+            before = collected.get(key)
+            total = term.coefficient + (before.coefficient if before else 0)
+            decimal = term.decimal or (before is not None and before.decimal)
+            collected[key] = term.with_coefficient(total, decimal)
+    left = [term for term in collected.values() if term.coefficient]
+    if not left:
+        return ZERO
+    if len(left) == 1:
+        return left[0].node()
+    first, *others = left
+    absolute = (term.with_coefficient(abs(term.coefficient), term.decimal).node() for term in others)
+    return Sum((first.node(), *absolute), (False, *(term.coefficient < 0 for term in others)))
+
+
+def multiply(factors: Iterable[Node]) -> Node:
+    """The product, with numbers folded and like factors collected.  The trees are bare."""
+    return product_of([(factor, Fraction(1)) for factor in factors])
+
+
+def divide(over: Node, under: Node) -> Node:
+    """The quotient, tidied like a product."""
+    return product_of([(over, Fraction(1)), (under, Fraction(-1))])
+
+
+def negative(tree: Node) -> Node:
+    """The tree with the other sign; that of a sum is turned term by term."""
+    if isinstance(tree, Sum):
+        return add(negative(term.node()) for term in _terms(tree))
+    return multiply([Number(-1.0, "-1"), tree])
+
+
+def raise_to(base: Node, exponent: Node) -> Node:
+    """The power, tidied like a product where the exponent is a number."""
+    number = rational(exponent)
+    return Power(base, exponent) if number is None else product_of([(base, number)])
+
+
+def product_of(factors: Iterable[tuple[Node, Fraction]]) -> Node:
+    """The product of powers."""
+    return _monomial(factors).node()
+
+
+def factors_of(tree: Node) -> tuple[Node, list[tuple[Node, Fraction]]]:
+    """A product as its number and its other factors with their exponents."""
+    term = _monomial([(tree, Fraction(1))])
+    return _numeral(term.coefficient, term.decimal), list(term.factors.items())
+
+
+def rational(tree: Node) -> Fraction | None:
+    """The exact value of a formula of numbers, or None."""
+    if isinstance(tree, Sum):
+        tree = add([tree])
+    if isinstance(tree, Sum):
+        return None
+    term = _monomial([(tree, Fraction(1))])
+    return None if term.factors else term.coefficient
+
+
+@dataclass(frozen=True, slots=True)
+class _Monomial:
+    """A rational number times powers; `decimal` says that the user wrote it with a decimal point."""
+
+    coefficient: Fraction
+    decimal: bool
+    factors: dict[Node, Fraction]
+
+    def with_coefficient(self, coefficient: Fraction, decimal: bool) -> _Monomial:
+        return _Monomial(coefficient, decimal, self.factors)
+
+    def node(self) -> Node:
+        if not self.coefficient:
+            return ZERO
+        size = abs(self.coefficient)
+        above = [_powered(base, e) for base, e in self.factors.items() if e > 0]
+        below = [_powered(base, -e) for base, e in self.factors.items() if e < 0]
+        if self.decimal and _finite(size):
+            if size != 1 or not above:
+                above.insert(0, _numeral(size, True))
+        else:
+            if size.numerator != 1 or not above:
+                above.insert(0, _numeral(Fraction(size.numerator), False))
+            if size.denominator != 1:
+                below.insert(0, _numeral(Fraction(size.denominator), False))
+        if below:
+            under = below[0] if len(below) == 1 else Product(tuple(below), (False,) * len(below))
+            tree: Node = Product((*above, under), (False,) * len(above) + (True,))
+        else:
+            tree = above[0] if len(above) == 1 else Product(tuple(above), (False,) * len(above))
+        return Negative(tree) if self.coefficient < 0 else tree
+
+
+def _powered(base: Node, exponent: Fraction) -> Node:
+    if exponent == 1:
+        return base
+    if exponent == _HALF:
+        return Call("sqrt", (base,))
+    return Power(base, _Monomial(exponent, exponent.denominator not in (1, 2, 3, 4, 6, 8), {}).node())
+
+
+def _terms(tree: Node) -> list[_Monomial]:
+    if isinstance(tree, Sum):
+        found = []
+        for term, minus in zip(tree.terms, tree.minus, strict=True):
+            for part in _terms(term):
+                found.append(part.with_coefficient(-part.coefficient if minus else part.coefficient, part.decimal))
+        return found
+    return [_monomial([(tree, Fraction(1))])]
+
+
+def _monomial(factors: Iterable[tuple[Node, Fraction]]) -> _Monomial:
+    coefficient, decimal = Fraction(1), False
+    collected: dict[Node, Fraction] = {}
+    waiting = list(factors)[::-1]
+    while waiting:
+        base, exponent = waiting.pop()
+        whole = exponent.denominator == 1
+        match base:
+            case Number() if (folded := _folded(base, exponent)) is not None:
+                coefficient *= folded
+                decimal = decimal or not base.text.lstrip("-").isdigit()
+            case Negative(operand=operand) if whole:
+                coefficient *= (-1) ** (exponent.numerator % 2)
+                waiting.append((operand, exponent))
+            case Product(factors=parts, over=over) if whole:
+                waiting.extend((p, -exponent if o else exponent) for p, o in zip(parts[::-1], over[::-1], strict=True))
+            case Call(function="sqrt", arguments=(inside,)) if whole or not isinstance(inside, Power):
+                waiting.append((inside, exponent / 2))
+            case Power(base=inside, exponent=power) if whole and (number := rational(power)) is not None:
+                waiting.append((inside, number * exponent))
+            case _:
+                _collect(collected, base, exponent)
+    return _Monomial(coefficient, decimal, collected if coefficient else {})
+
+
+def _collect(collected: dict[Node, Fraction], base: Node, exponent: Fraction) -> None:
+    total = collected.get(base, Fraction(0)) + exponent
+    if total:
+        collected[base] = total
+    else:
+        collected.pop(base, None)
+
+
+def _folded(number: Number, exponent: Fraction) -> Fraction | None:
+    """The power of a number as an exact fraction, or None where it is better left as it stands."""
+    if exponent.denominator != 1 or abs(exponent) > 30 or (number.text and float(number.text) != number.value):
+        return None  # an irrational power, or a number that was converted from another unit
+    if not math.isfinite(number.value) or (number.value == 0 and exponent < 0):
+        return None
+    value = Fraction(number.text or repr(number.value))
+    power: Fraction = value**exponent.numerator
+    small = max(abs(power.numerator), power.denominator) < _LARGEST
+    return power if small else None
+
+
+def _finite(value: Fraction) -> bool:
+    """Whether a float's digits say it exactly."""
+    return Fraction(repr(float(value))) == value
+
+
+def _numeral(value: Fraction, decimal: bool) -> Node:
+    if value.denominator == 1:
+        return Number(float(value), str(value.numerator))
+    if decimal and _finite(value):
+        return Number(float(value), repr(float(value)))
+    above, below = (Number(float(part), str(part)) for part in (value.numerator, value.denominator))
+    return Product((above, below), (False, True))
