@@ -1,0 +1,105 @@
+"""Solves a problem document as a user's would be, in a process of its own with a time limit: a crash is an outcome."""
+
+from __future__ import annotations
+
+import multiprocessing
+import time
+from dataclasses import dataclass
+from multiprocessing.connection import Connection
+from pathlib import Path
+
+from solvers.solution import Status, Verdict
+from tests.acceptance.records import Figure
+
+PROCESSES = multiprocessing.get_context("forkserver")
+PROCESSES.set_forkserver_preload(["service.assemble", "solvers.solve", __name__])
+
+
+@dataclass(frozen=True, slots=True)
+class Outcome:
+    """What came of one document, in its own units.  `figures` are in the order in which they were asked for."""
+
+    verdict: Verdict | None = None
+    value: float | None = None
+    value_error: float | None = None
+    figures: tuple[float | None, ...] = ()
+    failed_checks: tuple[str, ...] = ()
+    iterations: int = 0
+    meshes: int = 0
+    seconds: float = 0.0
+    trouble: str = ""
+
+
+def solve_document(document: Path, figures: tuple[Figure, ...] = (), seconds: float = 120.0) -> Outcome:
+    """Solve in a process of its own; end it after `seconds`."""
+    began = time.perf_counter()
+    receiver, sender = PROCESSES.Pipe(duplex=False)
+    child = PROCESSES.Process(target=_send_outcome, args=(sender, document, figures), daemon=True)
+    child.start()
+    sender.close()
+    try:
+        if receiver.poll(seconds):
+            return receiver.recv()
+        trouble = f"no end after {seconds:g} s"
+    except EOFError:
+        child.join()
+        trouble = f"the process died, exit {child.exitcode}"
+    finally:
+        child.kill()
+        child.join()
+    return Outcome(trouble=trouble, seconds=time.perf_counter() - began)
+
+
+def _send_outcome(sender: Connection, document: Path, figures: tuple[Figure, ...]) -> None:
+    try:
+        sender.send(outcome_of(document, figures))
+    except Exception as error:  # whatever happens is an outcome of this document, not of the test run
+        place = error.__traceback__
+        while place and place.tb_next:
+            place = place.tb_next
+        where = f" ({Path(place.tb_frame.f_code.co_filename).name}:{place.tb_lineno})" if place else ""
+        sender.send(Outcome(trouble=f"{type(error).__name__}: {error}{where}"))
+
+
+def outcome_of(document: Path, figures: tuple[Figure, ...] = ()) -> Outcome:
+    """Read, assemble and solve in this process; raises what these raise."""
+    from service.assemble import assemble
+    from service.spec import read
+    from solvers.solve import solve
+
+    problem = assemble(read(document.read_bytes()))
+    began = time.perf_counter()
+    solution = solve(problem)
+    seconds = time.perf_counter() - began
+
+    factors = {unknown.name: unknown.unit.factor for unknown in problem.unknowns}
+    parameter_factors = {parameter.name: parameter.unit.factor for parameter in problem.parameters}
+    step = problem.independent_unit.factor
+
+    def figure(asked: Figure) -> float | None:
+        if asked.place is None:
+            found = solution.parameters.get(asked.subject)
+            return None if found is None else found / parameter_factors[asked.subject]
+        if solution.curve is None:
+            return None
+        place = solution.curve.breaks[-1] if asked.place == "end" else float(asked.place) * step
+        name = asked.subject.rstrip("'")
+        primes = len(asked.subject) - len(name)
+        known = asked.subject in solution.curve.functions
+        value = solution.curve.evaluate(asked.subject if known else name, [place], 0 if known else primes)[0]
+        return float(value) / factors[name] * step**primes
+
+    def in_units(value: float | None) -> float | None:
+        return None if value is None else float(value) / problem.value_unit.factor
+
+    return Outcome(
+        verdict=solution.verdict,
+        value=in_units(solution.value),
+        value_error=in_units(solution.value_error),
+        figures=tuple(figure(asked) for asked in figures),
+        failed_checks=tuple(check.name for check in solution.checks if check.status is Status.FAILED),
+        iterations=solution.iterations,
+        meshes=len(solution.meshes),
+        seconds=seconds,
+        trouble=solution.diagnosis.sentence if solution.diagnosis else "",
+    )
