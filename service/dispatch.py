@@ -167,29 +167,30 @@ class Dispatcher:
 
     def _settle(self, run: Run, outcome: Outcome) -> State | None:
         """Write an outcome; the state that it leads to.  Raises StoreError."""
-        store, id, attempt, seconds = self._store, run.id, run.attempt, outcome.seconds
+        store, seconds = self._store, outcome.seconds
         match outcome.ending:
             case Ending.ANSWERED:
                 figures = Figures(**outcome.head["figures"], seconds=seconds)
                 stopped = bool(outcome.head.get("stopped"))
-                changed = store.finish(id, attempt, outcome.body, figures, stopped=stopped)
+                changed = store.finish(run, outcome.body, figures, stopped=stopped)
                 state = State.STOPPED if stopped else State.FINISHED
             case Ending.STOPPED:
-                changed, state = store.stop(id, attempt, seconds=seconds), State.STOPPED
+                changed, state = store.stop(run, seconds=seconds), State.STOPPED
             case Ending.RAISED:
                 reason = f"error in the worker: {outcome.reason}"
-                changed, state = store.fail(id, attempt, reason, seconds=seconds), State.FAILED
+                changed, state = store.fail(run, reason, seconds=seconds), State.FAILED
             case Ending.LIMIT:
-                changed, state = store.fail(id, attempt, outcome.reason, seconds=seconds), State.FAILED
-            case Ending.DIED if run.deaths + 1 >= self._settings.attempts:
-                times = f"{run.deaths + 1} times, at last" if run.deaths else "once,"
-                reason = f"its worker died {times} by {outcome.reason}"
-                changed, state = store.fail(id, attempt, reason, deaths=1, seconds=seconds), State.FAILED
+                changed, state = store.fail(run, outcome.reason, seconds=seconds), State.FAILED
             case Ending.DIED:
-                reason = f"its worker died by {outcome.reason}"
-                changed, state = store.give_back(id, attempt, reason=reason, deaths=1), State.WAITING
+                deaths = run.deaths + 1
+                run = replace(run, deaths=deaths, reason=f"its worker died: {outcome.reason}")
+                if deaths < self._settings.attempts:
+                    changed, state = store.give_back(run), State.WAITING
+                else:
+                    reason = f"its worker died {deaths} times, the last time by {outcome.reason}"
+                    changed, state = store.fail(run, reason, seconds=seconds), State.FAILED
             case Ending.UNSTARTED | Ending.CLOSED:
-                changed, state = store.give_back(id, attempt), State.WAITING
+                changed, state = store.give_back(run), State.WAITING
         return state if changed else None
 
     def _write(self, run: Run, write: Write) -> None:
@@ -213,7 +214,7 @@ class Dispatcher:
             self._end(run.id, state)
 
     def _give_up(self, run: Run) -> State | None:
-        changed = self._store.fail(run.id, run.attempt, "internal error: the worker's answer could not be kept")
+        changed = self._store.fail(run, "internal error: the worker's answer could not be kept")
         return State.FAILED if changed else None
 
     def _end(self, id: str, state: State) -> None:

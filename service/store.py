@@ -2,9 +2,9 @@
 
 `Store(url)` brings the database to the current schema.  What is accepted is on disk when `accept` returns.
 
-    accept(run, document)  claim(owner, n, lease)   finish / fail / stop / give_back(id, attempt, ...)
-    get(id)  document(id)  result(id)  list(...)    ask_cancel(id)  delete(id)  renew(owner, lease)
-    find_by_hash(hash)     counts()  writable()     take_back(owner)  close()
+    accept(run, document)   get(id)  document(id)  result(id)  list(...)  find_by_hash(hash)
+    claim(owner, most, lease)  renew(owner, lease)  take_back(owner)   finish / fail / stop / give_back(run, ...)
+    ask_cancel(id)  delete(id)  counts()  writable()  close()
 
 A state changes only by compare-and-set on (id, attempt): the answer of an attempt that is no longer the current one
 changes nothing.
@@ -53,6 +53,11 @@ _BY_ID = _SELECT.where(runs.c.id == sql.bindparam("sought"))
 _BY_KEY = _SELECT.where(runs.c.key == sql.bindparam("sought"))
 _DOCUMENT = sql.select(documents.c.document).where(documents.c.run_id == sql.bindparam("sought"))
 _RESULT = sql.select(results.c.document, results.c.compressed).where(results.c.run_id == sql.bindparam("sought"))
+_MOVE = runs.update().where(
+    runs.c.id == sql.bindparam("sought"),
+    runs.c.attempt == sql.bindparam("tried"),
+    runs.c.state == State.SOLVING.value,
+)
 _WAITING = sql.select(sql.func.count()).where(runs.c.state == State.WAITING.value)
 
 
@@ -196,36 +201,35 @@ class Store:
             found = connection.execute(sql.select(runs.c.id).where(mine, runs.c.cancel_asked == 1))
             return [str(id) for id in found.scalars()]
 
-    def finish(self, id: str, attempt: int, result: bytes, figures: Figures, *, stopped: bool = False) -> bool:
+    def finish(self, run: Run, result: bytes, figures: Figures, *, stopped: bool = False) -> bool:
         """Keep the result (JSON text in UTF-8); `stopped` where the run was cancelled.  False: not its attempt."""
         large = len(result) >= _COMPRESS_FROM
         state = State.STOPPED if stopped else State.FINISHED
         values = {field.name: getattr(figures, field.name) for field in fields(Figures)}
         content = zlib.compress(result, 1) if large else result
         with self._write() as connection:
-            if not _move(connection, id, attempt, state, values):
+            if not _move(connection, run.id, run.attempt, state, values):
                 return False
-            connection.execute(_INSERT_RESULT, {"run_id": id, "compressed": int(large), "document": content})
+            connection.execute(_INSERT_RESULT, {"run_id": run.id, "compressed": int(large), "document": content})
         return True
 
-    def fail(self, id: str, attempt: int, reason: str, *, deaths: int = 0, seconds: float | None = None) -> bool:
-        """End a run without a result.  False: not its attempt."""
-        values = {"reason": reason, "deaths": runs.c.deaths + deaths, "seconds": seconds}
+    def fail(self, run: Run, reason: str, *, seconds: float | None = None) -> bool:
+        """End a run without a result; `run.deaths` is kept.  False: not its attempt."""
+        values = {"reason": reason, "deaths": run.deaths, "seconds": seconds}
         with self._write() as connection:
-            return _move(connection, id, attempt, State.FAILED, values)
+            return _move(connection, run.id, run.attempt, State.FAILED, values)
 
-    def stop(self, id: str, attempt: int, *, seconds: float | None = None) -> bool:
+    def stop(self, run: Run, *, seconds: float | None = None) -> bool:
         """End a cancelled run that left no result.  False: not its attempt."""
+        values = {"reason": "stopped on request", "seconds": seconds}
         with self._write() as connection:
-            return _move(connection, id, attempt, State.STOPPED, {"seconds": seconds, "reason": "stopped on request"})
+            return _move(connection, run.id, run.attempt, State.STOPPED, values)
 
-    def give_back(self, id: str, attempt: int, *, reason: str | None = None, deaths: int = 0) -> bool:
-        """Let a run wait again after an attempt that says nothing final.  False: not its attempt."""
-        values: dict[str, Any] = {"deaths": runs.c.deaths + deaths, "owner": None, "lease": None}
-        if reason is not None:
-            values["reason"] = reason
+    def give_back(self, run: Run) -> bool:
+        """Let a run wait again, with its `deaths` and `reason` so far.  False: not its attempt."""
+        values = {"deaths": run.deaths, "reason": run.reason}
         with self._write() as connection:
-            return _move(connection, id, attempt, State.WAITING, values)
+            return _move(connection, run.id, run.attempt, State.WAITING, values)
 
     def take_back(self, owner: str) -> int:
         """At start: let runs wait again that an earlier life of this server left.  Returns how many."""
@@ -282,12 +286,9 @@ class Store:
 
 def _move(connection: Connection, id: str, attempt: int, state: State, values: Mapping[str, Any]) -> bool:
     """Change the state of a run that is being solved in this attempt."""
-    change = (
-        runs.update()
-        .where(runs.c.id == id, runs.c.attempt == attempt, runs.c.state == State.SOLVING.value)
-        .values({"state": state.value, "updated": time.time(), "owner": None, "lease": None, **values})
-    )
-    return connection.execute(change).rowcount == 1
+    change: dict[str, Any] = {"sought": id, "tried": attempt, "updated": time.time(), "owner": None, "lease": None}
+    change |= {"state": state.value, **values}
+    return connection.execute(_MOVE, change).rowcount == 1
 
 
 def _one(connection: Connection, query: sql.Select[Any], sought: str) -> Run | None:
