@@ -46,8 +46,6 @@ class Sort(Enum):
     MAXIMUM = frozenset({Verdict.GLOBAL_MAXIMUM, Verdict.LOCAL_MAXIMUM})
     STATIONARY = frozenset({Verdict.STATIONARY, Verdict.NOT_A_MINIMUM, Verdict.NOT_A_MAXIMUM})
     SOLUTION = frozenset({Verdict.STATIONARY, Verdict.GLOBAL_MINIMUM, Verdict.LOCAL_MINIMUM})  # nothing to choose
-        {Verdict.STATIONARY, Verdict.GLOBAL_MINIMUM, Verdict.LOCAL_MINIMUM}
-    )  # nothing is left to choose
     UNBOUNDED = frozenset({Verdict.NO_OPTIMUM, Verdict.NOT_A_MINIMUM})
     NOT_ATTAINED = frozenset({Verdict.NO_OPTIMUM, Verdict.NOT_A_MINIMUM, Verdict.NOT_VERIFIED, Verdict.BEST_FOUND})
 
