@@ -1,4 +1,4 @@
-"""The text of a unit: read into symbols with their exponents, and written again.  What a symbol means is not said here."""
+"""The text of a unit, read into symbols with their exponents and written again; what they mean is not said here."""
 
 from __future__ import annotations
 
@@ -92,8 +92,8 @@ class _Reader:
         if self.next == ")":
             raise UnitTextError(f"a ')' closes nothing in '{self.text}'", "remove it")
         if self.next:
-            before = self.tokens[self.place - 1]
-            raise UnitTextError(f"a sign is missing in '{self.text}'", f"write {before}*{self.next} or {before}/{self.next}")
+            hint = "write units as in kg*m/s^2, with one power on each"
+            raise UnitTextError(f"'{self.next}' follows without a sign in '{self.text}'", hint)
         return merged(symbols)
 
     def product(self) -> Symbols:
@@ -131,7 +131,8 @@ class _Reader:
         if token == "1":
             return ()
         if token.isdigit():
-            raise UnitTextError(f"the number {token} cannot stand in a unit", "a unit has names only, as in m/s^2 or 1/s")
+            hint = "a unit has names only, as in m/s^2 or 1/s"
+            raise UnitTextError(f"the number {token} cannot stand in a unit", hint)
         if not token or token in "*/^)-":
             where = f"'{token}'" if token else "the end"
             raise UnitTextError(f"a unit is missing before {where} in '{self.text}'", "write units as in m/s^2 or 1/s")

@@ -1,0 +1,175 @@
+"""The steps from a document to a problem, in order; each refuses with everything that it finds."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, replace
+from itertools import chain
+
+from service.assemble.declared import Declared, read_declared
+from service.assemble.dimensions import Sort, Units
+from service.assemble.domain import undefined
+from service.assemble.formulas import Formulas, Statement, parse_all
+from service.assemble.guesses import Guess, check_guess_names, read_guesses, with_guess
+from service.assemble.meaning import Meaning, understand
+from service.assemble.names import Kind, declare
+from service.assemble.orders import explicit, find_orders
+from service.assemble.places import Places, find_places, settle
+from service.assemble.relations import Sides, conditions, convert, shown_unit
+from service.complaints import Complaint, Stage, refuse
+from service.spec import Document
+from service.units import Measure
+from solvers.formula.nodes import At, Call, Name, Negative, Node, Power, Product, Sum, walk
+from solvers.problem import Condition, Equation, Options, Problem, Seek, Unknown
+from solvers.units import PLAIN, Unit
+
+LARGEST_SIZE = 20_000
+"""Nodes of all formulas together."""
+
+
+def assemble(document: Document) -> Problem:
+    """The problem that a document states, in SI.
+
+    Raises `Refused` with all complaints of the first stage that fails: names, formulas, units, conditions, size.
+    """
+    names = declare(document)
+    check_guess_names(document, names)
+    formulas = parse_all(document, names)
+    _check_size(formulas)
+    meaning = understand(formulas, names)
+    declared = read_declared(document, names)
+    constants = {name: constant.value for name, constant in declared.constants.items()}
+    refuse(Stage.FORMULAS, [found for formula in formulas.all() for found in undefined(formula, constants)])
+
+    units = Units(names.independent, declared.sorts, constants)
+    for name in meaning.order:
+        sort = units.sort(formulas.where[name].tree, formulas.where[name])
+        units.sorts[name] = replace(sort, zero=False)
+    _check_ends(formulas, units)
+    sides = {statement.pointer: convert(statement, units) for statement in _statements(formulas)}
+    value_unit = _value_unit(formulas, units)
+    guesses = read_guesses(document, names, formulas, declared, units)
+    declared = with_guess(declared, guesses)
+    refuse(Stage.UNITS, units.complaints)
+
+    places = find_places(formulas, units, dict(declared.parameters))
+    return _Builder(document, formulas, meaning, declared, guesses, units, places, sides).problem(value_unit)
+
+
+def _statements(formulas: Formulas) -> chain[Statement]:
+    return chain(formulas.dynamics, formulas.endpoints, formulas.constraints)
+
+
+def _check_size(formulas: Formulas) -> None:
+    size = sum(
+        1
+        for formula in formulas.all()
+        for part in (formula.tree.sides if isinstance(formula, Statement) else (formula.tree,))
+        for _ in walk(part)
+    )
+    if size > LARGEST_SIZE:
+        message = f"The formulas have {size:,} parts together; at most {LARGEST_SIZE:,} are solved."
+        hint = "Name repeated parts in where, and leave out what is not needed."
+        refuse(Stage.SIZE, [Complaint("", None, "problem-too-large", message, hint)])
+
+
+def _check_ends(formulas: Formulas, units: Units) -> None:
+    for end in formulas.ends:
+        units.place(end.tree, end)
+
+
+def _value_unit(formulas: Formulas, units: Units) -> Unit:
+    """The unit of the functional; its two terms have to agree."""
+    measures: list[Measure] = []
+    terms: list[tuple[Node, Sort]] = []
+    if formulas.integrand is not None:
+        tree = formulas.integrand.tree
+        terms.append((tree, units.sort(Call("integral", (tree,), tree.span), formulas.integrand)))
+    if formulas.endpoint is not None:
+        terms.append((formulas.endpoint.tree, units.sort(formulas.endpoint.tree, formulas.endpoint)))
+    measures = [sort.measure for _, sort in terms if not sort.zero]
+    if len(measures) == 2 and formulas.endpoint is not None:
+        units.compare(terms[0], terms[1], formulas.endpoint)
+    return shown_unit(measures) if measures else PLAIN
+
+
+@dataclass(frozen=True, slots=True)
+class _Builder:
+    """Puts the records together once everything is checked."""
+
+    document: Document
+    formulas: Formulas
+    meaning: Meaning
+    declared: Declared
+    guesses: Mapping[str, Guess | float]
+    units: Units
+    places: Places
+    sides: dict[str, Sides]
+
+    def problem(self, value_unit: Unit) -> Problem:
+        where = {name: formula.tree for name, formula in self.formulas.where.items()}
+        orders = find_orders(self.formulas, self.meaning.names)
+        functional, formulas = self.document.functional, self.formulas
+        endpoints, constraints, integrals = self.sorted_conditions()
+        solve = self.document.solve
+        return Problem(
+            independent=self.meaning.names.independent,
+            places=self.places.records,
+            unknowns=tuple(self.unknown(name, orders[name]) for name in self.meaning.names.of(Kind.UNKNOWN)),
+            seek=Seek(functional.seek),
+            integrand=formulas.integrand.tree if formulas.integrand else None,
+            endpoint=self.settle(formulas.endpoint.tree) if formulas.endpoint else None,
+            constants=tuple(self.declared.constants.values()),
+            parameters=tuple(self.declared.parameters.values()),
+            where=tuple((name, where[name]) for name in self.meaning.order if not self.meaning.traits[name].placed),
+            dynamics=tuple(explicit(self.equations(), orders, where)),
+            endpoints=endpoints,
+            constraints=constraints,
+            integrals=integrals,
+            options=Options(solve.tolerance, solve.time_limit, solve.starts, solve.points),
+            independent_unit=self.declared.units[self.meaning.names.independent],
+            value_unit=value_unit,
+        )
+
+    def unknown(self, name: str, order: int) -> Unknown:
+        lower, upper = self.declared.bounds[name]
+        guess = self.guesses.get(name)
+        assert not isinstance(guess, float)  # numbers are for parameters
+        return Unknown(name, order, lower, upper, guess, self.declared.units[name])
+
+    def equations(self) -> list[Equation]:
+        lines = []
+        for statement in self.formulas.dynamics:
+            left, right = self.sides[statement.pointer].trees
+            lines.append(Equation(left, right, None, statement.text.strip(), statement.pointer))
+        return lines
+
+    def sorted_conditions(self) -> tuple[tuple[Condition, ...], tuple[Condition, ...], tuple[Condition, ...]]:
+        """Endpoint, pointwise and integral conditions, by what they depend on."""
+        endpoints: list[Condition] = []
+        constraints: list[Condition] = []
+        integrals: list[Condition] = []
+        for statement in (*self.formulas.endpoints, *self.formulas.constraints):
+            for condition in conditions(statement, self.sides[statement.pointer], self.meaning, self.settle):
+                traits = self.meaning.of(condition.body)
+                (integrals if traits.integral else constraints if traits.moving else endpoints).append(condition)
+        return tuple(endpoints), tuple(constraints), tuple(integrals)
+
+    def settle(self, node: Node) -> Node:
+        """Places become those of the problem, and abbreviations of values at places are written out."""
+        match node:
+            case At():
+                return settle(node, self.places, self.units, dict(self.declared.parameters))
+            case Name(name=name) if name in self.meaning.traits and self.meaning.traits[name].placed:
+                return self.settle(self.formulas.where[name].tree)
+            case Negative(operand=operand):
+                return replace(node, operand=self.settle(operand))
+            case Sum(terms=terms):
+                return replace(node, terms=tuple(self.settle(term) for term in terms))
+            case Product(factors=factors):
+                return replace(node, factors=tuple(self.settle(factor) for factor in factors))
+            case Power(base=base, exponent=exponent):
+                return replace(node, base=self.settle(base), exponent=self.settle(exponent))
+            case Call(arguments=arguments):
+                return replace(node, arguments=tuple(self.settle(argument) for argument in arguments))
+        return node

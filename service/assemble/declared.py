@@ -1,0 +1,93 @@
+"""Constants, parameters and the units of all declared names."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+from service.assemble.dimensions import UNCHECKED, Sort
+from service.assemble.names import Names
+from service.complaints import Complaint, Stage, pointer, refuse
+from service.spec import Document
+from service.units import ONE, Measure, Quantity, parse_quantity, parse_unit
+from solvers.problem import Constant, Parameter
+from solvers.unit_text import UnitTextError
+from solvers.units import PLAIN, Unit
+
+
+@dataclass(frozen=True, slots=True)
+class Declared:
+    """What the document says of its names, in SI."""
+
+    sorts: Mapping[str, Sort]
+    units: Mapping[str, Unit]
+    constants: Mapping[str, Constant]
+    parameters: Mapping[str, Parameter]
+    bounds: Mapping[str, tuple[float, float]]  # of unknowns
+
+
+def read_declared(document: Document, names: Names) -> Declared:
+    """Units, constants and bounds.  Raises `Refused`: stage units for units and values, conditions for bounds."""
+    complaints: list[Complaint] = []
+    sorts: dict[str, Sort] = {}
+    units: dict[str, Unit] = {}
+
+    def declare(name: str, unit: str, *place: str) -> None:
+        try:
+            measure = parse_unit(unit)
+        except UnitTextError as error:
+            complaints.append(_complaint(pointer(*place), error))
+            measure = ONE
+        sorts[names.written[name]] = Sort(measure) if unit.strip() else UNCHECKED
+        units[names.written[name]] = Unit(unit.strip(), measure.factor)
+
+    declare(document.independent.name, document.independent.unit, "independent", "unit")
+    for name, parameter in document.parameters.items():
+        declare(name, parameter.unit, "parameters", name, "unit")
+    for name, unknown in document.unknowns.items():
+        declare(name, unknown.unit, "unknowns", name, "unit")
+    constants: dict[str, Constant] = {}
+    for name, given in document.constants.items():
+        spelling = names.written[name]
+        try:
+            quantity = Quantity(given, None, None) if isinstance(given, float) else parse_quantity(given)
+        except UnitTextError as error:
+            complaints.append(_complaint(pointer("constants", name), error, "bad-value"))
+            continue
+        measure: Measure | None = quantity.measure
+        sorts[spelling] = Sort(measure) if measure else Sort(ONE, checked=False, bare=True)
+        units[spelling] = measure.unit if measure else PLAIN
+        constants[spelling] = Constant(spelling, quantity.value, quantity.tolerance, units[spelling])
+    refuse(Stage.UNITS, complaints)
+
+    bounds: dict[str, tuple[float, float]] = {}
+    for member, table in (("parameters", document.parameters), ("unknowns", document.unknowns)):
+        for name, part in table.items():
+            lower, upper = part.within
+            place = pointer(member, name, "within")
+            complaints += _bounds(place, lower, upper)
+            factor = units[names.written[name]].factor
+            low = -math.inf if lower is None else lower * factor
+            bounds[names.written[name]] = (low, math.inf if upper is None else upper * factor)
+    refuse(Stage.CONDITIONS, complaints)
+    parameters = {
+        spelling: Parameter(spelling, *bounds[spelling], guess=None, unit=units[spelling])
+        for spelling in (names.written[name] for name in document.parameters)
+    }
+    return Declared(sorts, units, constants, parameters, bounds)
+
+
+def _bounds(place: str, lower: float | None, upper: float | None) -> list[Complaint]:
+    if lower is None or upper is None or lower < upper:
+        return []
+    if lower == upper:
+        hint = "Make it a constant, or an equality in constraints."
+        return [Complaint(place, None, "bounds-equal", f"Both bounds are {lower:g}.", hint)]
+    message = f"The lower bound {lower:g} is above the upper bound {upper:g}."
+    return [Complaint(place, None, "bounds-order", message, f"Write [{upper:g}, {lower:g}].")]
+
+
+def _complaint(place: str, error: UnitTextError, code: str = "bad-unit") -> Complaint:
+    message = error.message[:1].upper() + error.message[1:] + "."
+    return Complaint(place, None, code, message, error.hint[:1].upper() + error.hint[1:] + ".")

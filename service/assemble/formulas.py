@@ -1,0 +1,127 @@
+"""All formulas of a document as trees, each with its text and its place in the document."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator, Mapping
+from dataclasses import dataclass
+from typing import TypeVar
+
+from service.assemble.names import Names
+from service.complaints import Complaint, Stage, pointer, refuse
+from service.spec import Document
+from solvers.formula.errors import FormulaError
+from solvers.formula.nodes import Node, Number, Relation, Span
+from solvers.formula.parser import parse_expression, parse_relation
+
+Tree = TypeVar("Tree", Node, Relation, Node | Relation)
+
+
+@dataclass(frozen=True, slots=True)
+class Expression:
+    """A formula without a sign of relation."""
+
+    tree: Node
+    text: str
+    pointer: str
+
+    def complaint(self, span: Span, code: str, message: str, hint: str) -> Complaint:
+        """A finding at these characters of the formula."""
+        return Complaint(self.pointer, (span.start, span.end), code, message, hint)
+
+
+@dataclass(frozen=True, slots=True)
+class Statement:
+    """A formula with signs of relation."""
+
+    tree: Relation
+    text: str
+    pointer: str
+
+    def complaint(self, span: Span, code: str, message: str, hint: str) -> Complaint:
+        """A finding at these characters of the formula."""
+        return Complaint(self.pointer, (span.start, span.end), code, message, hint)
+
+
+Formula = Expression | Statement
+
+
+@dataclass(frozen=True, slots=True)
+class Formulas:
+    """Every formula of a document; `where` and `guesses` are by name."""
+
+    ends: tuple[Expression, Expression]
+    integrand: Expression | None
+    endpoint: Expression | None
+    where: Mapping[str, Expression]
+    dynamics: tuple[Statement, ...]
+    endpoints: tuple[Statement, ...]
+    constraints: tuple[Statement, ...]
+    guesses: Mapping[str, Expression]
+
+    def all(self) -> Iterator[Formula]:
+        """Every formula."""
+        yield from self.ends
+        yield from self.moving()
+        yield from self.guesses.values()
+
+    def moving(self) -> Iterator[Formula]:
+        """Those that say something about the curve: all but the ends and the guesses."""
+        yield from self.where.values()
+        yield from self.dynamics
+        yield from (part for part in (self.integrand, self.endpoint) if part is not None)
+        yield from self.endpoints
+        yield from self.constraints
+
+
+def parse_all(document: Document, names: Names) -> Formulas:
+    """Read every formula.  Raises `Refused` (stage formulas) with the first error of each."""
+    complaints: list[Complaint] = []
+
+    def expression(text: str | float, *place: str | int) -> Expression:
+        if isinstance(text, float):
+            shown = f"{text:.17g}" if text != round(text) or abs(text) > 1e15 else str(round(text))
+            shown = repr(text) if float(shown) == text and len(repr(text)) < len(shown) else shown
+            return Expression(Number(text, shown), shown, pointer(*place))
+        return Expression(_read(parse_expression, text, Number(0.0, "0"), place, complaints), text, pointer(*place))
+
+    def statements(member: str, texts: tuple[str, ...]) -> tuple[Statement, ...]:
+        nothing = Relation((Number(0.0, "0"), Number(0.0, "0")), ("=",))
+        return tuple(
+            Statement(_read(parse_relation, text, nothing, (member, index), complaints), text, pointer(member, index))
+            for index, text in enumerate(texts)
+        )
+
+    functional = document.functional
+    formulas = Formulas(
+        ends=(
+            expression(document.independent.start, "independent", "from"),
+            expression(document.independent.end, "independent", "to"),
+        ),
+        where={names.written[name]: expression(text, "where", name) for name, text in document.where.items()},
+        dynamics=statements("dynamics", document.dynamics),
+        integrand=expression(functional.integrand, "functional", "integrand") if functional.integrand else None,
+        endpoint=expression(functional.endpoint, "functional", "endpoint") if functional.endpoint else None,
+        endpoints=statements("endpoints", document.endpoints),
+        constraints=statements("constraints", document.constraints),
+        guesses={
+            names.written.get(name, name): expression(guess, "guess", name)
+            for name, guess in document.guess.items()
+            if isinstance(guess, str | float)
+        },
+    )
+    refuse(Stage.FORMULAS, complaints)
+    return formulas
+
+
+def _read(
+    parse: Callable[[str], Tree], text: str, instead: Tree, place: tuple[str | int, ...], complaints: list[Complaint]
+) -> Tree:
+    """The tree, or on an error a complaint and `instead`."""
+    try:
+        return parse(text)
+    except FormulaError as error:
+        message = error.message[:1].upper() + error.message[1:] + "."
+        hint = error.hint or "see the formula's signs: + - * / ^ ( ) = <= >= and the built-in functions"
+        span = (error.span.start, error.span.end)
+        complaints.append(Complaint(pointer(*place), span, error.code, message, hint))
+        return instead

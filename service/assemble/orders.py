@@ -1,0 +1,67 @@
+"""The order of every unknown, and which dynamics equations give a highest derivative outright."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from dataclasses import replace
+
+from service.assemble.formulas import Formulas
+from service.assemble.names import Kind, Names
+from solvers.formula.nodes import At, Name, Node, Relation, walk
+from solvers.problem import Equation
+
+
+def find_orders(formulas: Formulas, names: Names) -> dict[str, int]:
+    """The highest derivative of every unknown anywhere, abbreviations and conditions at places included."""
+    orders = dict.fromkeys(names.of(Kind.UNKNOWN), 0)
+    for formula in formulas.moving():
+        tree = formula.tree
+        for part in tree.sides if isinstance(tree, Relation) else (tree,):
+            for node in walk(part):
+                if isinstance(node, Name | At) and node.name in orders:
+                    orders[node.name] = max(orders[node.name], node.order)
+    return orders
+
+
+def derivatives(trees: Iterable[Node], where: Mapping[str, Node]) -> set[tuple[str, int]]:
+    """Every (name, order) that the trees hold along the curve, looking into abbreviations once each."""
+    found: set[tuple[str, int]] = set()
+    opened: set[str] = set()
+    stack = list(trees)
+    while stack:
+        for node in walk(stack.pop()):
+            if isinstance(node, Name | At):
+                if node.name not in where:
+                    found.add((node.name, node.order))
+                elif node.name not in opened:
+                    opened.add(node.name)
+                    stack.append(where[node.name])
+    return found
+
+
+def explicit(equations: Iterable[Equation], orders: Mapping[str, int], where: Mapping[str, Node]) -> list[Equation]:
+    """The equations, with `determines` where one side is just a highest derivative that nothing else in the line needs.
+
+    The right side of such a line is free of every derivative that another line gives, so that the lines can be
+    evaluated in any order; a line that is not stays implicit.
+    """
+    equations = list(equations)
+    candidates: dict[tuple[str, int], int] = {}
+    turned: list[Equation] = []
+    for index, equation in enumerate(equations):
+        turned.append(equation)
+        for left, right in ((equation.left, equation.right), (equation.right, equation.left)):
+            if not isinstance(left, Name) or not left.order or orders.get(left.name) != left.order:
+                continue
+            target = (left.name, left.order)
+            if target not in candidates and target not in derivatives([right], where):
+                candidates[target] = index
+                turned[-1] = replace(equation, left=left, right=right, determines=target)
+                break
+    # Lines that use what another line gives become implicit, the first ones last so that their users decide.
+    for target, index in reversed(candidates.items()):
+        line = turned[index]
+        others = {other for other in candidates if other != target and turned[candidates[other]].determines}
+        if derivatives([line.right], where) & others:
+            turned[index] = replace(line, determines=None)
+    return turned

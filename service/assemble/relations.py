@@ -1,0 +1,114 @@
+"""Relations in SI: numbers that stand alone take the unit of the other side, and chains become conditions."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass, replace
+
+from service.assemble.dimensions import Sort, Units, leader
+from service.assemble.domain import literal, value_of
+from service.assemble.formulas import Formula, Statement
+from service.assemble.meaning import Meaning
+from service.units import PURE, Measure
+from solvers.formula.nodes import Name, Node, Number, Product, Sum, walk
+from solvers.formula.printer import text
+from solvers.problem import Condition
+from solvers.units import PLAIN, Unit
+
+ZERO = Number(0.0, "0")
+
+
+@dataclass(frozen=True, slots=True)
+class Sides:
+    """The sides of a relation in SI, and the unit that its limits are in."""
+
+    trees: tuple[Node, ...]
+    unit: Unit
+
+
+def convert(statement: Statement, units: Units) -> Sides:
+    """Check the sides against each other and scale bare numbers; complaints gather in `units`."""
+    nodes = statement.tree.sides
+    sorts = [units.sort(node, statement) for node in nodes]
+    leading = leader(sorts)
+    lead = sorts[leading]
+    if lead.bare:
+        return Sides(nodes, PLAIN)
+    trees = []
+    for index, (node, sort) in enumerate(zip(nodes, sorts, strict=True)):
+        if sort.bare and not sort.zero:
+            trees.append(scaled(node, lead, statement, units))
+            continue
+        if index != leading and not sort.zero:
+            units.compare((nodes[leading], lead), (node, sort), statement)
+        trees.append(node)
+    return Sides(tuple(trees), shown_unit([sort.measure for sort in sorts if not sort.bare and not sort.zero]))
+
+
+def scaled(node: Node, lead: Sort, formula: Formula, units: Units) -> Node:
+    """A side of numbers (and constants without unit) in the unit of the leading side, converted to SI."""
+    measure = lead.measure
+    if measure.factor == 1:
+        return node
+    if measure.ambiguous:
+        message = f"The number '{text(node)}' would be in '{measure.text}', the unit of the other side: hardly meant."
+        hint = f'Give it a unit: a constant such as "c": "{text(node)[:20]} {measure.coherent.text}".'
+        units.complaints.append(formula.complaint(node.span, "bare-number", message, hint))
+        return node
+    if measure.dimension == PURE and any(isinstance(part, Name) and part.name == "pi" for part in walk(node)):
+        message = f"'{text(node)}' would be in '{measure.text}', the unit of the other side: with pi hardly meant."
+        hint = f"Write it in {measure.text}, or give a constant in rad."
+        units.complaints.append(formula.complaint(node.span, "bare-number", message, hint))
+        return node
+    if literal(node):
+        return Number(value_of(node, units.constants) * measure.factor, text(node), node.span)
+    return Product((Number(measure.factor, repr(measure.factor), node.span), node), (False, False), node.span)
+
+
+def shown_unit(measures: list[Measure]) -> Unit:
+    """The unit to show limits in: the first that mixes no two units of one kind (mm and m), else the SI unit."""
+    clear = [measure for measure in measures if not measure.ambiguous]
+    if clear:
+        return clear[0].without_angles.unit
+    return measures[0].coherent.unit if measures else PLAIN
+
+
+def conditions(
+    statement: Statement, sides: Sides, meaning: Meaning, settle: Callable[[Node], Node]
+) -> Iterator[Condition]:
+    """The conditions of a relation.
+
+    Neighbours of which one is a given number limit the other; `lower <= body <= upper` is one condition.  Where both
+    depend on the curve, their difference is compared with zero.  Two numbers side by side give nothing.
+    """
+    fixed = [meaning.of(tree).fixed for tree in sides.trees]
+    trees = [settle(tree) for tree in sides.trees]
+    label, place = statement.text.strip(), statement.pointer
+    pending: Condition | None = None  # a limit on the side to its right, which may get a second one
+    for index, sign in enumerate(statement.tree.signs):
+        left, right = trees[index], trees[index + 1]
+        if fixed[index] and fixed[index + 1]:
+            continue
+        if fixed[index]:
+            pending = _limited(right, left, sign, True, label, place, sides.unit)
+            if pending.equality or index + 1 == len(statement.tree.signs) or not fixed[index + 2]:
+                yield pending
+                pending = None
+        elif fixed[index + 1]:
+            limited = _limited(left, right, sign, False, label, place, sides.unit)
+            if pending is not None and not limited.equality:
+                limited = replace(pending, lower=pending.lower or limited.lower, upper=pending.upper or limited.upper)
+            elif pending is not None:
+                yield pending
+            yield limited
+            pending = None
+        else:
+            difference = Sum((left, right), (False, True), statement.tree.span)
+            yield _limited(difference, ZERO, sign, False, label, place, sides.unit)
+
+
+def _limited(body: Node, limit: Node, sign: str, limit_on_left: bool, label: str, place: str, unit: Unit) -> Condition:
+    if sign == "=":
+        return Condition(body, limit, limit, label, place, unit)
+    below = (sign == "<=") == limit_on_left
+    return Condition(body, limit if below else None, None if below else limit, label, place, unit)

@@ -1,0 +1,136 @@
+"""The problem document, format 1, as typed records.  What a member means is said in its description."""
+
+from __future__ import annotations
+
+from typing import Annotated, Any, Literal
+
+from pydantic import BaseModel, ConfigDict, Field, PrivateAttr
+from pydantic_core import to_json
+
+from service.canonical import fingerprint
+
+LONGEST_FORMULA = 2_000
+"""Characters of one formula."""
+
+MOST_NAMES = 100
+"""Entries of one table of names (constants, parameters, unknowns, abbreviations)."""
+
+MOST_RELATIONS = 200
+"""Entries of one list of relations."""
+
+MOST_POINTS = 5_000
+"""Points of one guess."""
+
+Number = Annotated[float, Field(allow_inf_nan=False)]
+Formula = Annotated[str, Field(min_length=1, max_length=LONGEST_FORMULA)]
+Relations = Annotated[tuple[Formula, ...], Field(max_length=MOST_RELATIONS)]
+UnitText = Annotated[str, Field(max_length=100, description="Unit such as `mm/s^2` or `kg*m/s^2`; empty: not checked")]
+About = Annotated[str, Field(max_length=1_000, description="What it is, in words")]
+Within = Annotated[
+    tuple[Number | None, Number | None],
+    Field(description="Lower and upper bound in the declared unit; null is open", examples=[[0, None], [-1.5, 1.5]]),
+]
+Points = Annotated[tuple[tuple[Number, Number], ...], Field(min_length=2, max_length=MOST_POINTS)]
+
+
+class Part(BaseModel):
+    """What all parts of a document have in common: they do not change, and unknown members are refused."""
+
+    model_config = ConfigDict(frozen=True, extra="forbid", strict=True, populate_by_name=True)
+
+
+class IndependentPart(Part):
+    """The independent variable and the two ends between which it runs."""
+
+    name: str = Field(max_length=40, examples=["t", "x"])
+    unit: UnitText = ""
+    start: Number | Formula = Field(
+        alias="from", description="First end: a number in `unit`, a formula of constants, or a parameter's name"
+    )
+    end: Number | Formula = Field(alias="to", description="Last end, likewise; a free end is a parameter")
+
+
+class ParameterPart(Part):
+    """An unknown number."""
+
+    unit: UnitText = ""
+    within: Within = (None, None)
+    about: About = ""
+
+
+class UnknownPart(Part):
+    """An unknown function of the independent variable; the bounds are on the function itself."""
+
+    unit: UnitText = ""
+    within: Within = (None, None)
+    about: About = ""
+
+
+class FunctionalPart(Part):
+    """What is sought: an extremum of the integral of `integrand` plus the `endpoint` term."""
+
+    seek: Literal["minimum", "maximum", "stationary"] = Field(description="The sort of extremum")
+    integrand: Formula | None = Field(None, description="Formula under the integral", examples=["y*sqrt(1 + y'^2)"])
+    endpoint: Formula | None = Field(
+        None, description="Formula of values at places and parameters; `0` asks only for what satisfies the conditions",
+        examples=["T", "x(T)^2"],
+    )  # fmt: skip
+
+
+class SolvePart(Part):
+    """How far to go."""
+
+    tolerance: Annotated[float, Field(ge=1e-12, le=0.1, description="Relative, of curve and value")] = 1e-6
+    time_limit: Annotated[float, Field(gt=0, le=3_600, description="Seconds")] = 60.0
+    starts: Annotated[int, Field(ge=1, le=100, description="How many different starts are tried")] = 1
+    points: Annotated[int, Field(ge=50, le=200_000, description="Limit on the points of the mesh")] = 20_000
+
+
+class Document(Part):
+    """A problem document, format 1: what one would write on paper, and nothing about the numerical method."""
+
+    format: Literal[1] = Field(description="The format of this document")
+    title: str = Field("", max_length=200)
+    notes: str = Field("", max_length=20_000)
+    independent: IndependentPart
+    constants: Annotated[dict[str, Number | Annotated[str, Field(min_length=1, max_length=200)]], Field(
+        max_length=MOST_NAMES, description="Name -> number, `value unit`, or `value unit +/- tolerance`",
+        examples=[{"g": "9.80665 m/s^2", "l": "0.80 m +/- 0.01 m", "n": 3}])] = {}  # fmt: skip
+    parameters: Annotated[dict[str, ParameterPart], Field(max_length=MOST_NAMES)] = {}
+    unknowns: Annotated[dict[str, UnknownPart], Field(min_length=1, max_length=MOST_NAMES)]
+    where: Annotated[dict[str, Formula], Field(
+        max_length=MOST_NAMES, description="Name -> formula: abbreviations, usable everywhere")] = {}  # fmt: skip
+    dynamics: Relations = Field((), description="Differential equations", examples=[["x'' = a", "m*v' + k*v = F"]])
+    functional: FunctionalPart
+    endpoints: Relations = Field(
+        (),
+        description="Relations between values at the ends or at places between",
+        examples=[["y(0) = 0", "x(T) <= D"]],
+    )
+    constraints: Relations = Field(
+        (),
+        description="Relations that hold everywhere, and integral ones",
+        examples=[["-2 <= u <= 2", "integral(sqrt(1 + y'^2)) = 4.2"]],
+    )
+    guess: Annotated[dict[str, Number | Formula | Points], Field(
+        max_length=MOST_NAMES,
+        description="Name -> formula or points for an unknown, number for a parameter")] = {}  # fmt: skip
+    solve: SolvePart = SolvePart()
+
+    _source: dict[str, Any] = PrivateAttr(default_factory=dict)
+
+    @classmethod
+    def of(cls, source: dict[str, Any]) -> Document:
+        """The record of a parsed document, which it keeps.  Raises pydantic's `ValidationError`."""
+        document = cls.model_validate_json(to_json(source))  # only JSON turns into tuples under strict rules
+        document._source = source
+        return document
+
+    @property
+    def source(self) -> dict[str, Any]:
+        """The document as it was sent."""
+        return self._source
+
+    def canonical_hash(self) -> str:
+        """`sha256:…` over the canonical text: the same for documents that differ in spacing and order only."""
+        return fingerprint(self._source)
