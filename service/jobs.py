@@ -1,0 +1,87 @@
+"""What a worker does with a run: read, assemble, solve, write the result document.
+
+Imports the solver with CasADi: for workers and for `curvewright solve`, never for the web process.
+"""
+
+from __future__ import annotations
+
+import json
+import math
+import time
+from collections.abc import Callable, Mapping
+from dataclasses import replace
+from typing import Any
+
+from service.archive import result_document
+from service.assemble import assemble
+from service.reading import read_back
+from service.run import State
+from service.spec import read
+from solvers.problem import Problem
+from solvers.solution import Progress
+from solvers.solve import solve as solve_problem
+
+Report = Callable[[dict[str, Any]], None]
+Stop = Callable[[], bool]
+
+_FIGURES = ("verdict", "value", "value_error", "value_unit")
+
+
+def perform(
+    document_text: str, report: Report, stop: Stop, *, id: str | None = None, longest: float = math.inf
+) -> dict[str, Any]:
+    """Solve a problem document; the result document.
+
+    `report` takes the progress events of the developers' guide, `stop()` is True once the solver shall stop with what
+    it has.  `longest` bounds the document's own time limit, in seconds.  Raises Refused.
+    """
+    began = time.perf_counter()
+    document = read(document_text.encode())
+    problem = assemble(document)
+    reading = read_back(problem, document)
+    limit = min(problem.options.time_limit, longest)
+    problem = replace(problem, options=replace(problem.options, time_limit=limit))
+    ready = time.perf_counter()
+
+    def watch(progress: Progress) -> bool:
+        report(progress_event(progress, problem))
+        return stop()
+
+    solution = solve_problem(problem, watch)
+    stopped = solution.diagnosis is not None and solution.diagnosis.reason == "stopped"
+    state = State.STOPPED if stopped else State.FINISHED
+    times = {"read": ready - began}
+    return result_document(document, problem, solution, reading, times, id=id, state=state.value)
+
+
+def solve(head: Mapping[str, Any], body: bytes, report: Report, stop: Stop) -> tuple[Mapping[str, Any], bytes]:
+    """`perform` as a slot's child calls it: the figures for the list of runs, and the result as JSON text."""
+    result = perform(body.decode(), report, stop, id=head["id"], longest=head["time_limit"])
+    figures = {name: result[name] for name in _FIGURES}
+    text = json.dumps(result, ensure_ascii=False, allow_nan=False, separators=(",", ":"))
+    return {"figures": figures, "stopped": result["state"] == State.STOPPED.value}, text.encode("utf-8", "backslashreplace")
+
+
+def progress_event(progress: Progress, problem: Problem) -> dict[str, Any]:
+    """A sign of life in the user's units, as JSON."""
+    event: dict[str, Any] = {
+        "kind": progress.kind,
+        "mesh": progress.mesh,
+        "intervals": progress.intervals,
+        "points": progress.points,
+        "value": _number(progress.value, problem.value_unit.factor),
+    }
+    if progress.kind == "iteration":
+        event |= {"iteration": progress.iteration, "infeasibility": _number(progress.infeasibility)}
+    else:
+        breaks = progress.breaks or ()
+        event |= {
+            "error": _number(progress.error),
+            "breaks": [place / problem.independent_unit.factor for place in breaks],
+        }
+    return event
+
+
+def _number(value: float | None, unit: float = 1.0) -> float | None:
+    """In units of `unit`; None for what JSON cannot say."""
+    return None if value is None or not math.isfinite(value) else value / unit
