@@ -71,11 +71,10 @@ def result(run_id: str) -> str:
     return f"{api_run(run_id)}/result"
 
 
-def table(run_id: str, suffix: str, *, rows: int | None = None, step: str = "", columns: str = "") -> str:
+def table(run_id: str, suffix: str, *, rows: str = "", step: str = "", columns: str = "", derivatives: str = "") -> str:
     """The table of a result as `csv`, `json`, `xlsx` or `npz`."""
-    return _with_query(
-        f"{api_run(run_id)}/table.{suffix}", rows="" if rows is None else str(rows), step=step, columns=columns
-    )
+    path = f"{api_run(run_id)}/table.{suffix}"
+    return _with_query(path, rows=rows, step=step, columns=columns, derivatives=derivatives)
 
 
 def _with_query(path: str, **values: str) -> str:

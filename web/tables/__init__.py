@@ -3,6 +3,7 @@
 from collections.abc import Callable
 from dataclasses import dataclass
 
+from web.tables.choice import Choice, read_choice
 from web.tables.csv import to_csv, to_csvw, to_json
 from web.tables.extremes import Extremes, extremes
 from web.tables.npz import to_npz
@@ -12,12 +13,14 @@ from web.tables.xlsx import to_xlsx
 __all__ = [
     "FILE_FORMATS",
     "MOST_ROWS",
+    "Choice",
     "Column",
     "Extremes",
     "FileFormat",
     "Table",
     "TableError",
     "extremes",
+    "read_choice",
     "table",
     "to_csvw",
 ]

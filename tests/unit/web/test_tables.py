@@ -143,7 +143,8 @@ def test_a_result_without_curve_has_no_table(infeasible):
         ("J", "s*m", 1, "J/s/m"),
         ("m*s", "s", 1, "m"),
         ("m", "", 2, "m"),
-        ("kg/(m*s)", "s", 1, "(kg/(m*s))/(s)"),
+        ("kg/(m*s)", "s", 1, "kg/m/s^2"),
+        ("m!", "s", 2, "(m!)/(s)^2"),
         ("1/s", "s", 1, "1/s^2"),
     ],
 )

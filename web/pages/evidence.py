@@ -1,0 +1,126 @@
+"""The evidence of a result as rows: parameters, diagnosis, checks, prices, limit report."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Any
+
+from web import display
+from web.tables import Extremes
+from web.verdicts import check_method, reason_heading
+
+Rows = tuple[tuple[str, ...], ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Check:
+    """One check as a row: what was tested, how it ended, its figure against its threshold, where it is worst."""
+
+    name: str
+    method: str
+    status: str
+    tone: str
+    figure: str
+    threshold: str
+    where: str
+    sentence: str
+
+
+@dataclass(frozen=True, slots=True)
+class Diagnosis:
+    """Why there is no full result: the reason in words, what to do, and the findings."""
+
+    heading: str
+    sentence: str
+    advice: str
+    findings: Rows
+
+
+def parameters_of(result: Mapping[str, Any]) -> Rows:
+    declared = (result.get("problem") or {}).get("parameters") or {}
+    return tuple(
+        (name, display.quantity(item.get("value"), item.get("unit") or "", 9), _about(declared.get(name)))
+        for name, item in (result.get("parameters") or {}).items()
+    )
+
+
+def _about(declared: Any) -> str:
+    return str(declared.get("about") or "") if isinstance(declared, Mapping) else ""
+
+
+def diagnosis_of(result: Mapping[str, Any]) -> Diagnosis | None:
+    given = result.get("diagnosis")
+    if not given:
+        return None
+    heading, advice = reason_heading(str(given.get("reason") or ""))
+    findings = (
+        (
+            str(finding.get("condition") or ""),
+            display.quantity(finding.get("amount"), finding.get("unit") or "", 4),
+            _where(finding.get("where"), result),
+            str(finding.get("note") or ""),
+        )
+        for finding in given.get("findings") or ()
+    )
+    return Diagnosis(heading, str(given.get("sentence") or ""), advice, tuple(findings))
+
+
+def _independent(result: Mapping[str, Any]) -> tuple[str, str]:
+    """Name and unit of the independent variable, from the curve or else from the problem."""
+    found = (result.get("curve") or {}).get("independent") or (result.get("problem") or {}).get("independent") or {}
+    return str(found.get("name") or ""), str(found.get("unit") or "")
+
+
+def _where(where: Any, result: Mapping[str, Any]) -> str:
+    """`t = 0.3 s, x`; a dash where nothing is said."""
+    if not where:
+        return "—"
+    name, unit = _independent(result)
+    place = where.get("place")
+    parts = [
+        f"{name} = {display.quantity(place, unit, 5)}" if place is not None else "",
+        str(where.get("subject") or ""),
+    ]
+    return ", ".join(part for part in parts if part) or "—"
+
+
+def check_of(check: Mapping[str, Any], result: Mapping[str, Any]) -> Check:
+    return Check(
+        name=str(check["name"]),
+        method=check_method(str(check["name"])),
+        status=str(check["status"]),
+        tone=display.tone(check["status"]),
+        figure=display.number(check.get("figure"), 2),
+        threshold=display.number(check.get("threshold"), 2),
+        where=_where(check.get("where"), result),
+        sentence=str(check.get("sentence") or ""),
+    )
+
+
+def prices_of(result: Mapping[str, Any]) -> Rows:
+    prices = (result.get("multipliers") or {}).get("prices") or ()
+    return tuple(
+        (str(p["condition"]), display.quantity(p.get("price"), p.get("unit") or ""), _effect(p)) for p in prices
+    )
+
+
+def _effect(price: Mapping[str, Any]) -> str:
+    amount = price.get("price")
+    if amount is None:
+        return "not known"
+    if amount == 0:
+        return "the limit does not bind"
+    return f"raising the limit {'raises' if amount > 0 else 'lowers'} the value"
+
+
+def reach_of(line: Extremes, result: Mapping[str, Any]) -> tuple[str, ...]:
+    _, unit = _independent(result)
+    return (
+        line.name,
+        display.quantity(line.lowest, line.unit),
+        display.quantity(line.lowest_at, unit, 5),
+        display.quantity(line.highest, line.unit),
+        display.quantity(line.highest_at, unit, 5),
+        display.quantity(line.largest, line.unit),
+    )

@@ -1,0 +1,103 @@
+"""What a verdict, a reason and a check mean, in sentences that claim no more than was shown."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from typing import Any
+
+_MEANINGS = {
+    "global minimum": "No admissible curve gives a smaller value: the problem is convex over the region of its bounds, "
+    "and every check that applies has passed.",
+    "local minimum": "No neighbouring curve gives a smaller value: the first- and second-order conditions hold. "
+    "A better curve far from this one is not ruled out.",
+    "global maximum": "No admissible curve gives a greater value: the problem is concave over the region of its "
+    "bounds, and every check that applies has passed.",
+    "local maximum": "No neighbouring curve gives a greater value: the first- and second-order conditions hold. "
+    "A better curve far from this one is not ruled out.",
+    "stationary": "To first order no small change of the curve changes the value. Whether the value is least, greatest "
+    "or neither is not shown.",
+    "not a minimum": "The curve is stationary, but a neighbouring curve gives a smaller value.",
+    "not a maximum": "The curve is stationary, but a neighbouring curve gives a greater value.",
+    "not verified": "The solver ended with this curve, but it did not stand up to its checks. Do not take it for an "
+    "optimum.",
+    "best found": "A limit was reached before the search ended. This is the best curve until then; nothing is claimed "
+    "about how much better one could be.",
+    "infeasible": "No curve was found that meets all conditions at once.",
+    "no optimum": "As the mesh is refined the value runs away or the curve degenerates: as it is stated the problem "
+    "has no optimum.",
+}
+
+_REASONS = {
+    "infeasible": ("No curve meets all conditions", "Loosen or drop one of the conditions below and solve again."),
+    "undefined": (
+        "A formula is not defined where the search begins",
+        "Give bounds or a guess that keep the sub-expression below inside its domain.",
+    ),
+    "out of time": (
+        "The time limit ended the search",
+        "Raise solve.time_limit, ask for a looser solve.tolerance, or give a guess near the answer.",
+    ),
+    "stopped": ("Stopped before the end", "Edit the problem or solve it again as it is."),
+    "unbounded": (
+        "The value runs away",
+        "A condition that holds the curve or the value back is missing: add bounds, or an integral condition.",
+    ),
+    "no progress": (
+        "The search got stuck",
+        "Give a guess, bounds on the unknowns, or several starts (solve.starts).",
+    ),
+    "points limit": (
+        "The mesh reached its limit before the tolerance",
+        "Raise solve.points or ask for a looser solve.tolerance.",
+    ),
+    "memory": ("The solver reached its memory limit", "Ask for fewer points (solve.points) or a looser tolerance."),
+    "crash": (
+        "The solver broke off",
+        "This is our fault, not the problem's. Solve it again; if it breaks off again, report the problem hash below.",
+    ),
+}
+
+_CHECKS = {
+    "motion": "dynamics integrated again from the stored controls, interval by interval",
+    "limits": "bounds and pointwise constraints between the nodes",
+    "conditions": "endpoint, junction and integral conditions by independent quadrature",
+    "stationarity": "Euler-Lagrange or costate equations off the nodes",
+    "free ends": "transversality and natural boundary conditions",
+    "first integral": "what must stay constant along the curve",
+    "Legendre": "sign of the second derivative in the free controls",
+    "conjugate points": "second variation over the whole curve",
+    "convexity": "joint convexity over the region of the bounds",
+    "refinement": "value and curve on successive meshes",
+    "other starts": "what other starts found",
+}
+
+
+def verdict_sentence(verdict: str | None, checks: Sequence[Mapping[str, Any]]) -> str:
+    """What the verdict means; the failed checks are named where they are the reason."""
+    meaning = _MEANINGS.get(verdict or "", "There is no verdict: the run ended before anything could be shown.")
+    failed = [str(check["name"]) for check in checks if check["status"] == "failed"]
+    if failed and verdict in ("not verified", "not a minimum", "not a maximum"):
+        meaning += f" Failed: {', '.join(failed)}."
+    return meaning
+
+
+def reason_heading(reason: str) -> tuple[str, str]:
+    """Heading and advice for the reason of a diagnosis; an unknown one is said as it is."""
+    return _REASONS.get(reason, (f"No full result: {reason}" if reason else "No full result", ""))
+
+
+def check_method(name: str) -> str:
+    """By what independent method a check works; "" for an unknown one."""
+    return _CHECKS.get(name, "")
+
+
+def tally(checks: Sequence[Mapping[str, Any]]) -> str:
+    """`8 checks passed, 1 failed, 2 do not apply.`"""
+    counts = {status: sum(check["status"] == status for check in checks) for status in ("passed", "failed")}
+    rest = len(checks) - sum(counts.values())
+    parts = [f"{counts['passed']} passed"]
+    if counts["failed"]:
+        parts.append(f"{counts['failed']} failed")
+    if rest:
+        parts.append(f"{rest} {'does' if rest == 1 else 'do'} not apply")
+    return f"Of {len(checks)} checks {', '.join(parts)}."
