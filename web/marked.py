@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
@@ -30,7 +31,7 @@ def complaint(given: Mapping[str, Any], *, field: str = "", text: str = "") -> C
     before, marked, after = cut(text, given.get("span"))
     return Complaint(
         message=str(given.get("message", "")),
-        hint=str(given.get("hint") or ""),
+        hint=_sentence(str(given.get("hint") or "")),
         code=str(given.get("code", "")),
         pointer=str(given.get("pointer") or given.get("parameter") or ""),
         field=field,
@@ -51,3 +52,8 @@ def cut(text: str, span: Any) -> tuple[str, str, str]:
     if len(after) > AROUND + 1:
         after = after[:AROUND] + "…"
     return before, marked or "\N{NO-BREAK SPACE}", after
+
+
+def _sentence(hint: str) -> str:
+    """Begin with a capital letter, unless the first word may be a name in a formula."""
+    return hint[:1].upper() + hint[1:] if re.match(r"[a-z]{2,}[ ,:]", hint) else hint

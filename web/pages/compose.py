@@ -91,7 +91,11 @@ def compose_page(
     reading: Mapping[str, Any] | None = None,
     complaints: Sequence[Mapping[str, Any]] = (),
 ) -> ComposePage:
-    """The page of a draft.  `reading` or `complaints` are the answer of the check; neither: not checked yet."""
+    """The page of a draft.  `reading` or `complaints` are the answer of the check; neither: not checked yet.
+
+    A post that only asks for a check or another row is answered with status 200 whatever the check says; 422 is for a
+    draft that was to be solved (`draft.solve`) and cannot be.
+    """
     shown = _complaints(draft, complaints)
     by_field: dict[str, list[Complaint]] = {}
     for item in shown:

@@ -50,7 +50,7 @@ export function enhance(form) {
     await send(command, graftSheet);
     form.inert = false;
     delete form.dataset.busy;
-    form.querySelector("[autofocus]")?.focus();
+    form.querySelector("[data-focus]")?.focus();
     keepDraft(form);
   };
 

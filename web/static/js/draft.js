@@ -17,9 +17,10 @@ export function offerDraft(form, rebuild) {
   const kept = read();
   if (!kept || kept === encoded(new FormData(form), "check").toString()) return;
   const notice = document.createElement("p");
-  notice.className = "notice actions";
+  notice.className = "notice";
   const button = document.createElement("button");
   button.type = "button";
+  button.className = "slight";
   button.textContent = "Bring back what I last wrote in this tab";
   button.addEventListener("click", async () => {
     restore(form, new URLSearchParams(kept));

@@ -2,7 +2,8 @@
  * Takes parts of a page that the service answered into the page that is shown.
  *
  * `graftLive` touches nothing that is typed into: it takes over the parts marked `data-live` (they have ids) and the
- * marks of fields in error. `graftSheet` replaces the fields too, keeps opened sections open, then does the same.
+ * marks of fields in error. `graftSheet` replaces the fields too, keeps opened sections open, then does the same;
+ * the field to go to is then marked `data-focus`.
  */
 export function graftLive(page, answer) {
   for (const fresh of answer.querySelectorAll("[data-live]")) {
@@ -20,6 +21,10 @@ export function graftLive(page, answer) {
 export function graftSheet(page, answer) {
   const open = [...page.querySelectorAll("#sheet details[open]")].map((part) => part.id);
   page.querySelector('input[name="view"]').value = answer.querySelector('input[name="view"]').value;
+  for (const field of answer.querySelectorAll("[autofocus]")) {
+    field.removeAttribute("autofocus"); // means page load; a graft leaves the focus to its caller
+    field.dataset.focus = "";
+  }
   page.getElementById("sheet").replaceChildren(...adopted(page, answer.getElementById("sheet")));
   for (const id of open) {
     const part = page.getElementById(id);
