@@ -15,6 +15,7 @@ from numpy.polynomial import polynomial
 from numpy.typing import NDArray
 
 from solvers.formula.evaluate import evaluate
+from solvers.formula.nodes import Node
 from solvers.functions import Compiled
 from solvers.limits import constants_of, interval_of, number, quantity_bounds
 from solvers.problem import Problem, Unknown
@@ -181,61 +182,48 @@ def _unknown(
     middle: float,
 ) -> list[Array]:
     """Values at `at` of an unknown and its derivatives, lowest first."""
+    grid, back = np.unique(at, return_inverse=True)
     span = places[-1] - places[0]
     if unknown.guess is not None:
-        if isinstance(unknown.guess, tuple):
-            given_at, given = np.array(unknown.guess).T
-            values = np.interp(at, given_at, given)
-        else:
-            tree = unknown.guess
-            with np.errstate(all="ignore"):
-                values = evaluate(tree, lambda name, order: at if name == independent else constants[name], ARRAYS)
-            values = np.broadcast_to(np.asarray(values, dtype=float), at.shape)
-        return _with_differences(values, at, unknown.order)
-    rows = []
-    line = _line(known.get((unknown.name, 0)), at, places)
-    rows.append(np.full_like(at, middle) if line is None else line)
-    below = rows[0]
+        rows = [_given(unknown.guess, grid, constants, independent)]
+        for _ in range(unknown.order):
+            rows.append(np.gradient(rows[-1], grid))
+        return [row[back] for row in rows]
+    line = _line(known.get((unknown.name, 0)), grid, places)
+    rows = [np.full_like(grid, middle) if line is None else line]
     for order in range(1, unknown.order + 1):
-        slope = np.gradient(below[np.argsort(at)], np.sort(at)) if order == 1 else np.zeros_like(at)
-        if order == 1:
-            back = np.empty_like(slope)
-            back[np.argsort(at)] = slope
-            slope = back
-        line = _line(known.get((unknown.name, order)), at, places)
+        line = _line(known.get((unknown.name, order)), grid, places)
+        slope = np.gradient(rows[0], grid) if order == 1 else np.zeros_like(grid)
         rows.append(slope if line is None else line)
-        below = rows[-1]
     if bend and unknown.order:
-        size = max(float(np.abs(rows[0]).max()), 1e-3 * abs(span)) if np.abs(rows[0]).max() > 0 else abs(span)
-        fraction = (at - places[0]) / span
-        degree = max(1, (unknown.order + 1) // 2 if unknown.order > 1 else 1)
-        shape = polynomial.polypow([0.0, 4.0, -4.0], degree)
+        size = float(np.abs(rows[0]).max()) or abs(span)
+        shape = polynomial.polypow([0.0, 4.0, -4.0], max(1, unknown.order // 2 + unknown.order % 2))
         if turn % 2:
             shape = polynomial.polymul(shape, [1.0, -2.0])
+        fraction = (grid - places[0]) / span
         for order in range(unknown.order + 1):
             rows[order] = rows[order] + bend * size * polynomial.polyval(fraction, shape) / span**order
             shape = polynomial.polyder(shape)
-    return rows
+    return [row[back] for row in rows]
+
+
+def _given(guess: Node | tuple[tuple[float, float], ...], grid: Array, constants: dict[str, float],
+           independent: str) -> Array:  # fmt: skip
+    """The user's guess on a grid."""
+    if isinstance(guess, tuple):
+        places, values = np.array(guess).T
+        return np.interp(grid, places, values)
+    with np.errstate(all="ignore"):
+        value = evaluate(guess, lambda name, order: grid if name == independent else constants[name], ARRAYS)
+    return np.broadcast_to(np.asarray(value, dtype=float), grid.shape)
 
 
 def _line(known: list[tuple[int, float]] | None, at: Array, places: Array) -> Array | None:
+    """Straight lines through known values."""
     if not known:
         return None
     ordered = sorted(known)
     return np.interp(at, [places[index] for index, _ in ordered], [value for _, value in ordered])
-
-
-def _with_differences(values: Array, at: Array, order: int) -> list[Array]:
-    """A sampled function and its derivatives by differences."""
-    order_of = np.argsort(at, kind="stable")
-    places, keep = np.unique(at, return_index=True)
-    rows = [np.array(values)]
-    sampled = np.asarray(values)[keep]
-    for _ in range(order):
-        sampled = np.gradient(sampled, places)
-        rows.append(np.interp(at, places, sampled))
-    del order_of
-    return rows
 
 
 def _point_values(compiled: Compiled, where: Layout, z: Array) -> Array:

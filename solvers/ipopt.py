@@ -143,9 +143,8 @@ class _Watcher(ca.Callback):  # type: ignore[misc]
         return str(ca.nlpsol_out(index))
 
     def get_sparsity_in(self, index: int) -> ca.Sparsity:
-        name = ca.nlpsol_out(index)
         sizes = {"f": 1, "x": self.size, "lam_x": self.size, "g": self.rows, "lam_g": self.rows}
-        return ca.Sparsity.dense(sizes[name], 1) if name in sizes else ca.Sparsity(len(self.program.compiled.constants), 1)
+        return ca.Sparsity.dense(sizes.get(ca.nlpsol_out(index), len(self.program.compiled.constants)), 1)
 
     def eval(self, arguments: list[ca.DM]) -> list[float]:
         try:

@@ -16,8 +16,9 @@ from solvers.collocation import Family
 from solvers.curve import Curve
 from solvers.ipopt import Minimum, Start
 from solvers.lowering import primed
+from solvers.mesh import Mesh
 from solvers.problem import Seek
-from solvers.transcription import Layout, Program
+from solvers.transcription import Layout, Program, row_order
 
 Array = NDArray[np.float64]
 
@@ -137,71 +138,61 @@ def costate_curve(path: Trajectory) -> Curve:
     return Curve(path.breaks, functions)
 
 
-def carry_over(path: Trajectory, program: Program) -> Start:
-    """The trajectory as a warm start on another mesh, with its multipliers."""
-    source, target = path.program, program
-    where, old = target.layout, source.layout
+@dataclass(frozen=True, slots=True)
+class Carried:
+    """A trajectory brought onto another mesh, in SI: the variables, and the multipliers of bounds and rows."""
+
+    z: Array
+    bounds: Array
+    rows: Array
+
+    def onto(self, program: Program) -> Start:
+        """As a warm start of a program on that mesh."""
+        size = abs(program.value_scale)
+        return Start(self.z / program.scale, self.bounds * program.scale / size, self.rows * program.row_scale / size)
+
+
+def carry(path: Trajectory, mesh: Mesh, where: Layout) -> Carried:
+    """Bring a trajectory onto another mesh of the same problem."""
+    source, old = path.program, path.program.layout
+    order = row_order(source.compiled, mesh, where)
     z = np.zeros(where.size)
     z[where.places], z[where.parameters] = path.places, path.parameters
     z[where.integrals] = path.z[old.integrals]
-    breaks = target.mesh.breaks(path.places)
     starts, ends = path.places[where.stretch], path.places[where.stretch + 1]
     points = starts + where.fractions * (ends - starts)
-    inside = _Sampler(path.breaks, points, breaks, where)
-    z[where.nodes] = inside.at_breaks(path.state_modes())
-    z[where.inner] = inside.at_points(path.state_modes())
-    z[where.controls] = inside.at_points(path.control_modes())
+    breaks = mesh.breaks(path.places)
+    z[where.nodes] = _sample(path.breaks, path.state_modes(), breaks)
+    z[where.inner] = _sample(path.breaks, path.state_modes(), points)
+    z[where.controls] = _sample(path.breaks, path.control_modes(), points)
 
-    value_size = abs(target.value_scale)
-    rows = np.zeros(target.rows.count)
-    count, n = len(points), target.compiled.point.states
-    weights = np.concatenate([i.scheme.weights for i in target.mesh.intervals])
-    costates = inside.at_points(path.costate_modes())
-    rows[: count * n] = (-costates * weights[:, None]).ravel()
-    gauss = [k for k, i in enumerate(target.mesh.intervals) if i.scheme.family is Family.GAUSS]
-    if gauss:
-        rows[target.rows.ends : target.rows.pointwise] = costates[where.first[np.array(gauss) + 1] - 1].ravel()
-    density = inside.at_points(_modes(source, path.multipliers, None))
+    rows = np.zeros(order.count)
+    weights = np.concatenate([i.scheme.weights for i in mesh.intervals])
+    costates = _sample(path.breaks, path.costate_modes(), points)
+    rows[: order.ends] = (-costates * weights[:, None]).ravel()
+    gauss = [k for k, i in enumerate(mesh.intervals) if i.scheme.family is Family.GAUSS]
+    rows[order.ends : order.pointwise] = costates[where.first[np.array(gauss, int) + 1] - 1].ravel()
     measures = where.measures * (ends - starts)
-    rows[target.rows.pointwise : target.rows.integrals] = (density * measures[:, None]).ravel()
-    rows[target.rows.integrals :] = path.row_multipliers[source.rows.integrals :]
+    density = _sample(path.breaks, _modes(source, path.multipliers, None), points)
+    rows[order.pointwise : order.integrals] = (density * measures[:, None]).ravel()
+    rows[order.integrals :] = path.row_multipliers[source.rows.integrals :]
 
     bounds = np.zeros(where.size)
     old_measures = old.measures * (path.places[old.stretch + 1] - path.places[old.stretch])
+    nearest = np.searchsorted((path.points[1:] + path.points[:-1]) / 2, points)  # multipliers of bounds may jump
     for new, before in ((where.inner, old.inner), (where.controls, old.controls)):
-        values = path.bound_multipliers[before] / old_measures[:, None]
-        bounds[new] = inside.nearest(path.points, values) * measures[:, None]
+        bounds[new] = (path.bound_multipliers[before] / old_measures[:, None])[nearest] * measures[:, None]
     bounds[where.parameters] = path.bound_multipliers[old.parameters]
-    return Start(z / target.scale, bounds * target.scale / value_size, rows * target.row_scale / value_size)
+    return Carried(z, bounds, rows)
 
 
-class _Sampler:
-    """Evaluates piecewise polynomials of one mesh at the points and breaks of another."""
-
-    def __init__(self, breaks: Array, points: Array, new_breaks: Array, where: Layout) -> None:
-        self.breaks, self.points, self.new_breaks, self.where = breaks, points, new_breaks, where
-
-    def _evaluate(self, modes: list[Array], places: Array) -> Array:
-        owner = np.clip(np.searchsorted(self.breaks, places, side="left") - 1, 0, len(modes) - 1)
-        values = np.empty((len(places), modes[0].shape[1]))
-        for k in np.unique(owner):
-            inside = owner == k
-            left, right = self.breaks[k], self.breaks[k + 1]
-            local = np.clip((2 * places[inside] - left - right) / (right - left), -1.0, 1.0)
-            values[inside] = np.polynomial.legendre.legvander(local, len(modes[k]) - 1) @ modes[k]
-        return values
-
-    def at_points(self, modes: list[Array]) -> Array:
-        """Values at the points of the new mesh."""
-        return self._evaluate(modes, self.points)
-
-    def at_breaks(self, modes: list[Array]) -> Array:
-        """Values at the breaks of the new mesh."""
-        return self._evaluate(modes, self.new_breaks)
-
-    def nearest(self, places: Array, values: Array) -> Array:
-        """Values of the nearest old point: multipliers of bounds may jump, so nothing is interpolated."""
-        middle = (places[1:] + places[:-1]) / 2
-        return values[np.searchsorted(middle, self.points)]
-
-
+def _sample(breaks: Array, modes: list[Array], places: Array) -> Array:
+    """Piecewise polynomials at places of another mesh (len(places) x components)."""
+    owner = np.clip(np.searchsorted(breaks, places, side="left") - 1, 0, len(modes) - 1)
+    values = np.empty((len(places), modes[0].shape[1]))
+    for k in np.unique(owner):
+        inside = owner == k
+        left, right = breaks[k], breaks[k + 1]
+        local = np.clip((2 * places[inside] - left - right) / (right - left), -1.0, 1.0)
+        values[inside] = np.polynomial.legendre.legvander(local, len(modes[k]) - 1) @ modes[k]
+    return values

@@ -126,6 +126,17 @@ def layout(compiled: Compiled, mesh: Mesh) -> Layout:
                   fractions, measures, stretch[owner], at_place)  # fmt: skip
 
 
+def row_order(compiled: Compiled, mesh: Mesh, where: Layout) -> Rows:
+    """Give every constraint its row."""
+    count, point = len(where.fractions), compiled.point
+    gauss = sum(i.scheme.family is Family.GAUSS for i in mesh.intervals)
+    ends = count * point.states
+    pointwise = ends + gauss * point.states
+    integrals = pointwise + count * point.constraints
+    conditions = integrals + point.integrals
+    return Rows(0, ends, pointwise, integrals, conditions, conditions + compiled.end.outputs - 1)
+
+
 def spread(compiled: Compiled, where: Layout, scales: Scales) -> Array:
     """One scale for every variable of z."""
     scale = np.ones(where.size)
@@ -207,14 +218,7 @@ def transcribe(compiled: Compiled, mesh: Mesh, scales: Scales, row_sizes: RowSiz
     scale = spread(compiled, where, scales)
     gauss = np.flatnonzero([i.scheme.family is Family.GAUSS for i in mesh.intervals])
     conditions = end.outputs - 1
-    rows = Rows(
-        defects=0,
-        ends=count * n,
-        pointwise=count * n + len(gauss) * n,
-        integrals=count * n + len(gauss) * n + count * point.constraints,
-        conditions=count * n + len(gauss) * n + count * point.constraints + point.integrals,
-        count=count * n + len(gauss) * n + count * point.constraints + point.integrals + conditions,
-    )
+    rows = row_order(compiled, mesh, where)
     row_scale = np.concatenate(
         [
             np.tile(scales.states, count),
@@ -316,7 +320,9 @@ def transcribe(compiled: Compiled, mesh: Mesh, scales: Scales, row_sizes: RowSiz
     numbers = _nonzeros(point.jacobian, count, v, d)
     end_numbers = end.jacobian(y, constants)
     slope = ca.DM(gradient_parts[1]) + ca.mtimes(gradient_parts[2], numbers) + ca.mtimes(gradient_parts[3], end_numbers)
-    slopes = ca.DM(jacobian_parts[1]) + ca.mtimes(jacobian_parts[2], numbers) + ca.mtimes(jacobian_parts[3], end_numbers)  # noqa: E501
+    slopes = (
+        ca.DM(jacobian_parts[1]) + ca.mtimes(jacobian_parts[2], numbers) + ca.mtimes(jacobian_parts[3], end_numbers)
+    )  # noqa: E501
     weight_f, weight_g = ca.MX.sym("lam_f"), ca.MX.sym("lam_g", rows.count)
     padded = np.hstack([target, np.zeros((count, 1), np.int64)]).ravel()
     if rows.count:

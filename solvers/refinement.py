@@ -1,0 +1,145 @@
+"""From a solved mesh to its error and to a better mesh: degree where the curve is smooth, width where it is not.
+
+On every interval the Legendre coefficients of states and controls are looked at: where they fall fast a higher degree
+finishes the job, where they do not the interval is cut near the place where the curve bends most.  Reference for the
+idea: Mavriplis (1994), Adaptive mesh strategies for the spectral element method, Computer Methods in Applied Mechanics
+and Engineering 116 (from memory).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.polynomial import legendre
+from numpy.typing import NDArray
+
+from solvers.collocation import Family
+from solvers.mesh import Interval, Mesh, interval
+from solvers.trajectory import Trajectory
+
+Array = NDArray[np.float64]
+
+HIGHEST_DEGREE = 10
+SMOOTH = 0.45
+"""Least fall per degree, in powers of ten, of the coefficients of a curve that counts as smooth."""
+NARROWEST = 1e-11
+"""Least width of an interval, relative to the whole."""
+END_CUT = 0.12
+"""Where an interval is cut whose trouble sits at one of its ends."""
+
+
+@dataclass(frozen=True, slots=True)
+class Estimate:
+    """Per interval: `errors` relative to each quantity's size, `falls` (powers of ten per degree), `bends` (0 to 1)."""
+
+    errors: Array
+    falls: Array
+    bends: Array
+
+    @property
+    def worst(self) -> float:
+        """The largest error of the mesh."""
+        return float(self.errors.max())
+
+
+def estimate(path: Trajectory) -> Estimate:
+    """Local errors of a solved mesh."""
+    mesh = path.program.mesh
+    span = path.breaks[-1] - path.breaks[0]
+    widths = np.diff(path.breaks)
+    state_sizes = _sizes(path.states)
+    control_sizes = _sizes(path.controls)
+    errors, falls, bends = (np.zeros(len(mesh.intervals)) for _ in range(3))
+    for k, (states, controls) in enumerate(zip(path.state_modes(), path.control_modes(), strict=True)):
+        weight = min(1.0, widths[k] / span)
+        columns = np.vstack([states / state_sizes, np.zeros((0, states.shape[1]))])
+        error, worst = _tail(columns)
+        falls[k], bends[k] = _shape(columns[:, worst]) if columns.shape[1] else (np.inf, 0.5)
+        scaled = controls / control_sizes * weight
+        control_error, control_worst = _tail(scaled)
+        if control_error > error:
+            error = control_error
+            falls[k], bends[k] = _shape(scaled[:, control_worst])
+        elif scaled.shape[1]:
+            bends[k] = _shape(scaled[:, control_worst])[1]
+        errors[k] = error
+    return Estimate(errors, falls, bends)
+
+
+def _sizes(values: Array) -> Array:
+    sizes = np.abs(values).max(axis=0, initial=0.0)
+    return np.where(sizes > 0, sizes, 1.0)
+
+
+def _tail(columns: Array) -> tuple[float, int]:
+    """The largest last coefficients, and the column that has them."""
+    if columns.shape[1] == 0:
+        return 0.0, 0
+    last = np.abs(columns[-1])
+    if len(columns) > 2:
+        last = np.maximum(last, 0.1 * np.abs(columns[-2]))
+    worst = int(np.argmax(last))
+    return float(last[worst]), worst
+
+
+def _shape(modes: Array) -> tuple[float, float]:
+    """How fast coefficients fall, and where in the interval (0 to 1) the function bends most."""
+    envelope = np.maximum.accumulate(np.abs(modes)[::-1])[::-1]
+    envelope = np.maximum(envelope, 1e-300)
+    degrees = np.arange(1, len(envelope))
+    fall = -float(np.polyfit(degrees, np.log10(envelope[1:]), 1)[0]) if len(degrees) > 1 else 0.0
+    grid = np.linspace(-1.0, 1.0, 41)
+    order = 2 if len(modes) > 3 else 1
+    bend = np.abs(legendre.legval(grid, legendre.legder(modes, order))) if len(modes) > order else np.ones(41)
+    return fall, float((grid[int(np.argmax(bend))] + 1) / 2)
+
+
+def refine(path: Trajectory, found: Estimate, tolerance: float) -> Mesh:
+    """A better mesh for a local tolerance."""
+    mesh = path.program.mesh
+    span = abs(path.breaks[-1] - path.breaks[0])
+    pieces: list[Interval] = []
+    for k, old in enumerate(mesh.intervals):
+        width = abs(path.breaks[k + 1] - path.breaks[k]) / span
+        pieces.extend(_replace(old, found, k, tolerance, width, len(mesh.intervals)))
+    return Mesh(tuple(pieces))
+
+
+def _replace(old: Interval, found: Estimate, k: int, tolerance: float, width: float, count: int) -> Iterator[Interval]:
+    family, degree = old.scheme.family, old.scheme.degree
+    start, end = old.start, old.start + old.width
+    if found.errors[k] <= tolerance:
+        yield old
+        return
+    fall = max(found.falls[k], 1e-3)
+    missing = np.log10(found.errors[k] / tolerance)
+    wanted = degree + max(1, int(np.ceil(missing / fall)))
+    if fall >= SMOOTH and wanted <= HIGHEST_DEGREE:
+        yield interval(old.stretch, start, end, family, wanted)
+        return
+    if width < NARROWEST:
+        yield old
+        return
+    if fall >= SMOOTH:  # smooth but far from resolved: halves of a higher degree
+        cuts = [0.5]
+    else:
+        bend = found.bends[k]
+        if bend < END_CUT:
+            cuts = [END_CUT]
+        elif bend > 1 - END_CUT:
+            cuts = [1 - END_CUT]
+        else:
+            cuts = [max(bend - 0.15, bend / 2), min(bend + 0.15, (1 + bend) / 2)]
+    edges = [start, *(start + cut * old.width for cut in cuts), end]
+    smooth_degree = max(degree, 5) if fall >= SMOOTH else degree
+    for left, right in zip(edges[:-1], edges[1:], strict=True):
+        touching = (left == start and old.start == 0.0) or (right == end)
+        yield interval(old.stretch, left, right, family if touching else Family.RADAU, smooth_degree)
+
+
+def finer(mesh: Mesh) -> Mesh:
+    """The same mesh with every degree raised, to see what is left to gain."""
+    return Mesh(tuple(interval(i.stretch, i.start, i.start + i.width, i.scheme.family, i.scheme.degree + 2)
+                      for i in mesh.intervals))  # fmt: skip
