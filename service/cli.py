@@ -1,4 +1,4 @@
-"""The command line: `curvewright serve`, `solve`, `check`, `samples`.
+"""The command line: `curvewright serve`, `solve`, `check`, `samples`, `ready`.
 
 Exit codes: 0 the verdict is of the sort that was sought (or the document is fine), 1 a weaker verdict or none,
 2 the document or the call was refused.  Modules are imported by the command that needs them: `serve` never loads the
@@ -120,6 +120,17 @@ def samples() -> None:
 
     for name, sentence in ABOUT.items():
         click.echo(f"{name:<24}{sentence}")
+
+
+@main.command()
+def ready() -> None:
+    """Say whether the server that the settings name is ready for runs: exit 0, else 1."""
+    from service.ready import is_ready
+    from service.settings import Settings
+
+    good = is_ready(Settings())
+    click.echo("ready" if good else "not ready")
+    sys.exit(0 if good else 1)
 
 
 def _body(file: str) -> bytes:

@@ -1,6 +1,6 @@
 """Solves the catalogue, or a part of it, and prints one line per case.
 
-    python -m tests.acceptance.report [ID or its beginning | TAG | samples]... [--jobs 2] [--limit 60]
+    python -m tests.acceptance.report [ID or its beginning | TAG | SAMPLE | samples]... [--jobs 2] [--limit 60]
 
 "true" is the true error in units of the tolerance, "stated" the stated error, "bound" whether it bounds the true one.
 """
@@ -68,7 +68,7 @@ def formatted(name: str, outcome: Outcome, distance: str, bound: str, broken: st
 def lines(words: list[str], jobs: int, limit: float) -> Iterator[tuple[bool, str]]:
     """One line after the other, in order, as soon as it is there."""
     cases = chosen(words) if words else list(CATALOGUE.values())
-    names = samples.names() if "samples" in words or not words else ()
+    names = [name for name in samples.names() if not words or "samples" in words or name in words]
     with ThreadPoolExecutor(jobs) as pool:
         solved = pool.map(lambda case: solve_document(case.document, case.figures, limit), cases)
         solved_samples = pool.map(lambda name: solve_document(SAMPLES / f"{name}.json", (), limit), names)
@@ -79,7 +79,7 @@ def lines(words: list[str], jobs: int, limit: float) -> Iterator[tuple[bool, str
 def main() -> int:
     """Print the table; 0 where all promises are kept."""
     parser = argparse.ArgumentParser(description="Solve the catalogue of published problems and compare.")
-    parser.add_argument("which", nargs="*", help=f"ids, 'samples', or tags: {', '.join(sorted(TAGS))}")
+    parser.add_argument("which", nargs="*", help=f"ids, samples ('samples': all), or tags: {', '.join(sorted(TAGS))}")
     parser.add_argument("--jobs", type=int, default=2)
     parser.add_argument("--limit", type=float, default=60.0, help="seconds for one problem")
     options = parser.parse_args()
