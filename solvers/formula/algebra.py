@@ -21,6 +21,7 @@ from solvers.formula.nodes import (
     Product,
     Sum,
     children,
+    size,
     with_children,
 )
 
@@ -83,6 +84,28 @@ def raise_to(base: Node, exponent: Node) -> Node:
 def product_of(factors: Iterable[tuple[Node, Fraction]]) -> Node:
     """The product of powers."""
     return _monomial(factors).node()
+
+
+def factored(tree: Node) -> Node:
+    """A sum with what its terms share taken out of it, where that makes it shorter."""
+    if not isinstance(tree, Sum):
+        return tree
+    terms = _terms(tree)
+    bases = dict.fromkeys(base for term in terms for base in term.factors)
+    shared = {base: min(term.factors.get(base, Fraction(0)) for term in terms) for base in bases}
+    number = abs(terms[0].coefficient)
+    if any(abs(term.coefficient) != number for term in terms):
+        number = Fraction(1)
+    if number == 1 and not any(shared.values()):
+        return tree
+    common = _Monomial(number, any(term.decimal for term in terms), {b: e for b, e in shared.items() if e})
+    rest = []
+    for term in terms:
+        left = [(base, power - shared[base]) for base, power in term.factors.items()]
+        left += [(base, -power) for base, power in shared.items() if power and base not in term.factors]
+        rest.append(multiply([_numeral(term.coefficient / number, term.decimal), product_of(left)]))
+    shorter = multiply([factored(add(rest)), common.node()])
+    return shorter if size(shorter) < size(tree) else tree
 
 
 def factors_of(tree: Node) -> tuple[Node, list[tuple[Node, Fraction]]]:

@@ -17,11 +17,10 @@ from solvers.formula.nodes import (
     Power,
     Product,
     Sum,
-    children,
     walk,
-    with_children,
 )
 from solvers.formula.parser import parse_expression
+from solvers.formula.substitute import substitute
 
 _PARTIALS = {
     "exp": ("exp(u)",), "log": ("1/u",),
@@ -36,16 +35,14 @@ _PARTIALS = {
 """The derivatives of each function of u (and v) with respect to its arguments; `sqrt` is a power."""
 
 
-def derivative(tree: Node, target: Name | At, check: Callable[[], None] | None = None) -> Node:
-    """The partial derivative of `tree` with respect to `target`.
+def derivative(tree: Node, target: Node, check: Callable[[], None] | None = None) -> Node:
+    """The partial derivative of `tree` with respect to `target`: a name, a value at a place or an `integral(…)`.
 
-    Names with different primes are independent of each other, and a value at a place is independent of every name.
+    Names with different primes are independent of each other; values at places and integrals depend on no name.
     `check` is called at every step and may raise to end a derivation that takes too long.  Raises ValueError for a
     table, whose derivative is no formula.
     """
-    aim = bare(target)
-    assert isinstance(aim, Name | At)
-    return _derivative(bare(tree), aim, check or (lambda: None))
+    return _derivative(bare(tree), bare(target), check or (lambda: None))
 
 
 def total_derivative(
@@ -60,15 +57,7 @@ def total_derivative(
     return add(slopes)
 
 
-def substitute(tree: Node, replacement: Callable[[Node], Node | None]) -> Node:
-    """The tree with every node for which `replacement` gives another one replaced by it, from the top."""
-    other = replacement(tree)
-    if other is not None:
-        return other
-    return with_children(tree, tuple(substitute(part, replacement) for part in children(tree)))
-
-
-def _derivative(tree: Node, target: Name | At, check: Callable[[], None]) -> Node:
+def _derivative(tree: Node, target: Node, check: Callable[[], None]) -> Node:
     check()
     if tree == target:
         return ONE
@@ -96,7 +85,7 @@ def _derivative(tree: Node, target: Name | At, check: Callable[[], None]) -> Nod
     raise TypeError(f"no derivative of a {type(tree).__name__}")
 
 
-def _product(tree: Node, target: Name | At, check: Callable[[], None]) -> Node:
+def _product(tree: Node, target: Node, check: Callable[[], None]) -> Node:
     """Factor by factor, each a base with a constant exponent."""
     number, factors = factors_of(tree)
     slopes = []
@@ -111,7 +100,7 @@ def _product(tree: Node, target: Name | At, check: Callable[[], None]) -> Node:
     return add(slopes)
 
 
-def _power(tree: Node, base: Node, exponent: Node, target: Name | At, check: Callable[[], None]) -> Node:
+def _power(tree: Node, base: Node, exponent: Node, target: Node, check: Callable[[], None]) -> Node:
     """b^e: e b^(e-1) b' + b^e ln(b) e'."""
     base_slope, exponent_slope = _derivative(base, target, check), _derivative(exponent, target, check)
     lower = Power(base, add([exponent, Number(-1.0, "-1")]))

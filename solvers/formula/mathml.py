@@ -10,12 +10,14 @@ from itertools import pairwise
 from solvers.formula.nodes import FUNCTIONS, At, Call, Name, Negative, Node, Number, Power, Product, Relation, Sum
 from solvers.formula.printer import ATOM, POWER, PRODUCT, SIGNED, numeral, text, tightness
 
-_GREEK = {
+GREEK = {
     "alpha": "α", "beta": "β", "gamma": "γ", "delta": "δ", "epsilon": "ε", "zeta": "ζ", "eta": "η", "theta": "θ",
     "iota": "ι", "kappa": "κ", "lambda": "λ", "mu": "μ", "nu": "ν", "xi": "ξ", "pi": "π", "rho": "ρ", "sigma": "σ",
     "tau": "τ", "upsilon": "υ", "phi": "φ", "chi": "χ", "psi": "ψ", "omega": "ω", "Gamma": "Γ", "Delta": "Δ",
     "Theta": "Θ", "Lambda": "Λ", "Xi": "Ξ", "Pi": "Π", "Sigma": "Σ", "Phi": "Φ", "Psi": "Ψ", "Omega": "Ω",
 }  # fmt: skip
+"""Names that are written out and shown as letters."""
+
 _WORDS = {"log": "ln", "asin": "arcsin", "acos": "arccos", "atan": "arctan", "sign": "sgn"}
 """Functions whose textbook name says more than ours; `log` is the natural logarithm."""
 
@@ -224,10 +226,10 @@ def _name(name: str, order: int) -> str:
 def _scripted(name: str, above: str) -> str:
     """The letters, with trailing digits and what follows a `_` as subscript and `above` as superscript."""
     letters, below = _split(name)
-    base = f"<mi>{escape(_GREEK.get(letters, letters))}</mi>"
+    base = f"<mi>{escape(GREEK.get(letters, letters))}</mi>"
     if below:
         marks = '<mo separator="true">,</mo>'.join(
-            f"<mn>{part}</mn>" if part.isdigit() else f"<mi>{escape(_GREEK.get(part, part))}</mi>" for part in below
+            f"<mn>{part}</mn>" if part.isdigit() else f"<mi>{escape(GREEK.get(part, part))}</mi>" for part in below
         )
         base += f"<mrow>{marks}</mrow>"
     if above:
@@ -278,7 +280,7 @@ def _is_word(tree: Node) -> bool:
             return function not in ("sqrt", "abs")
         case Name(name=name) | At(name=name):
             letters, _ = _split(name)
-            return len(letters) > 1 and letters not in _GREEK
+            return len(letters) > 1 and letters not in GREEK
         case Power(base=base):
             return _is_word(base)
         case _:

@@ -137,6 +137,11 @@ def walk(node: Node) -> Iterator[Node]:
         stack.extend(reversed(children(node)))
 
 
+def size(node: Node) -> int:
+    """How many nodes the tree has."""
+    return sum(1 for _ in walk(node))
+
+
 def with_children(node: Node, parts: tuple[Node, ...]) -> Node:
     """The same node with other direct parts, as many and in the same order as `children` gives."""
     match node:
