@@ -6,6 +6,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from itertools import chain
 
+from service.assemble.counting import check
 from service.assemble.declared import Declared, read_declared
 from service.assemble.dimensions import Sort, Units
 from service.assemble.domain import undefined
@@ -13,7 +14,7 @@ from service.assemble.formulas import Formulas, Statement, parse_all
 from service.assemble.guesses import Guess, check_guess_names, read_guesses, with_guess
 from service.assemble.meaning import Meaning, understand
 from service.assemble.names import Kind, declare
-from service.assemble.orders import explicit, find_orders
+from service.assemble.orders import explicit, find_orders, reach_of
 from service.assemble.places import Places, find_places, settle
 from service.assemble.relations import Sides, conditions, convert, shown_unit
 from service.complaints import Complaint, Stage, refuse
@@ -37,6 +38,7 @@ def assemble(document: Document) -> Problem:
     formulas = parse_all(document, names)
     _check_size(formulas)
     meaning = understand(formulas, names)
+    _check_written_out(formulas, meaning)
     declared = read_declared(document, names)
     constants = {name: constant.value for name, constant in declared.constants.items()}
     refuse(Stage.FORMULAS, [found for formula in formulas.all() for found in undefined(formula, constants)])
@@ -53,7 +55,9 @@ def assemble(document: Document) -> Problem:
     refuse(Stage.UNITS, units.complaints)
 
     places = find_places(formulas, units, dict(declared.parameters))
-    return _Builder(document, formulas, meaning, declared, guesses, units, places, sides).problem(value_unit)
+    problem = _Builder(document, formulas, meaning, declared, guesses, units, places, sides).problem(value_unit)
+    check(problem)
+    return problem
 
 
 def _statements(formulas: Formulas) -> chain[Statement]:
@@ -71,6 +75,31 @@ def _check_size(formulas: Formulas) -> None:
         message = f"The formulas have {size:,} parts together; at most {LARGEST_SIZE:,} are solved."
         hint = "Name repeated parts in where, and leave out what is not needed."
         refuse(Stage.SIZE, [Complaint("", None, "problem-too-large", message, hint)])
+
+
+def _check_written_out(formulas: Formulas, meaning: Meaning) -> None:
+    """Abbreviations that do not run along the curve are written out where they are used: not too often."""
+    sizes: dict[str, int] = {}
+
+    def size(tree: Node) -> int:
+        return sum(sizes.get(node.name, 1) if isinstance(node, Name) else 1 for node in walk(tree))
+
+    for name in meaning.order:
+        if not meaning.traits[name].moving:
+            sizes[name] = size(formulas.where[name].tree)
+    used = [formula.tree.sides for formula in (*formulas.endpoints, *formulas.constraints)]
+    used += [(formulas.endpoint.tree,)] if formulas.endpoint else []
+    total = sum(size(part) for parts in used for part in parts)
+    if total > LARGEST_SIZE:
+        message = (
+            f"Written out, the abbreviations of fixed values have {_figure(total)} parts; at most {LARGEST_SIZE:,}."
+        )
+        hint = "Make the values that are used over and over parameters, fixed by a condition."
+        refuse(Stage.SIZE, [Complaint("/where", None, "problem-too-large", message, hint)])
+
+
+def _figure(number: int) -> str:
+    return f"{number:,}" if number < 10**9 else "more than a billion"
 
 
 def _check_ends(formulas: Formulas, units: Units) -> None:
@@ -107,7 +136,8 @@ class _Builder:
     sides: dict[str, Sides]
 
     def problem(self, value_unit: Unit) -> Problem:
-        where = {name: formula.tree for name, formula in self.formulas.where.items()}
+        traits = self.meaning.traits
+        where = [(name, self.formulas.where[name].tree) for name in self.meaning.order if not traits[name].placed]
         orders = find_orders(self.formulas, self.meaning.names)
         functional, formulas = self.document.functional, self.formulas
         endpoints, constraints, integrals = self.sorted_conditions()
@@ -121,8 +151,8 @@ class _Builder:
             endpoint=self.settle(formulas.endpoint.tree) if formulas.endpoint else None,
             constants=tuple(self.declared.constants.values()),
             parameters=tuple(self.declared.parameters.values()),
-            where=tuple((name, where[name]) for name in self.meaning.order if not self.meaning.traits[name].placed),
-            dynamics=tuple(explicit(self.equations(), orders, where)),
+            where=tuple(where),
+            dynamics=tuple(explicit(self.equations(), orders, reach_of(where))),
             endpoints=endpoints,
             constraints=constraints,
             integrals=integrals,
@@ -156,11 +186,11 @@ class _Builder:
         return tuple(endpoints), tuple(constraints), tuple(integrals)
 
     def settle(self, node: Node) -> Node:
-        """Places become those of the problem, and abbreviations of values at places are written out."""
+        """Places become those of the problem, and abbreviations that do not run along the curve are written out."""
         match node:
             case At():
                 return settle(node, self.places, self.units, dict(self.declared.parameters))
-            case Name(name=name) if name in self.meaning.traits and self.meaning.traits[name].placed:
+            case Name(name=name) if name in self.meaning.traits and not self.meaning.traits[name].moving:
                 return self.settle(self.formulas.where[name].tree)
             case Negative(operand=operand):
                 return replace(node, operand=self.settle(operand))

@@ -218,14 +218,17 @@ def _misplaced(formulas: Formulas, meaning: Meaning) -> Iterator[Complaint]:
             message = "This abbreviation mixes what runs along the curve with values at places or integrals."
             hint = "Split it in two; a value that other formulas need can be a parameter, fixed by a condition."
             yield abbreviation.complaint(abbreviation.tree.span, "misplaced", message, hint)
-    for formula in (*formulas.endpoints, *([formulas.endpoint] if formulas.endpoint else [])):
-        yield from _running(formula, meaning)
+    if formulas.endpoint is not None:
+        yield from _running(formulas.endpoint, meaning)
+    for statement in formulas.endpoints:
+        yield from _running(statement, meaning)
     for formula in formulas.constraints:
         traits = meaning.of(formula.tree)
         if traits.moving and (traits.placed or traits.integral):
             yield from _nonlocal(formula, meaning, "holds at every point because of the other names in it")
-    for formula in formulas.all():
-        yield from _inside_integral(formula, meaning)
+    for any_formula in formulas.all():
+        yield from _inside_integral(any_formula, meaning)
+        yield from _placed_twice(any_formula, meaning)
     for end in formulas.ends:
         yield from _end(end, meaning)
 
@@ -282,6 +285,14 @@ def _inside_integral(formula: Formula, meaning: Meaning) -> Iterator[Complaint]:
                 message = "Inside an integral no other integral and no value at a place can stand."
                 yield formula.complaint(node.span, "misplaced", message, _BY_PARAMETER)
                 return
+
+
+def _placed_twice(formula: Formula, meaning: Meaning) -> Iterator[Complaint]:
+    for node in (node for part in _top(formula) for node in walk(part)):
+        traits = meaning.traits.get(node.name) if isinstance(node, At) else None
+        if isinstance(node, At) and traits is not None and not traits.moving:
+            message = f"The abbreviation '{node.name}' does not run along the curve: it has no value at a place."
+            yield formula.complaint(node.span, "no-place", message, f"Write {node.name} alone.")
 
 
 def _end(end: Expression, meaning: Meaning) -> Iterator[Complaint]:

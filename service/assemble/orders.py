@@ -23,23 +23,29 @@ def find_orders(formulas: Formulas, names: Names) -> dict[str, int]:
     return orders
 
 
-def derivatives(trees: Iterable[Node], where: Mapping[str, Node]) -> set[tuple[str, int]]:
-    """Every (name, order) that the trees hold along the curve, looking into abbreviations once each."""
+Reach = Mapping[str, frozenset[tuple[str, int]]]
+"""What every abbreviation depends on: names with their orders, none of them an abbreviation."""
+
+
+def reach_of(where: Iterable[tuple[str, Node]]) -> Reach:
+    """The reach of abbreviations that come in an order in which each uses only earlier ones."""
+    reach: dict[str, frozenset[tuple[str, int]]] = {}
+    for name, tree in where:
+        reach[name] = frozenset(derivatives([tree], reach))
+    return reach
+
+
+def derivatives(trees: Iterable[Node], reach: Reach) -> set[tuple[str, int]]:
+    """Every (name, order) that the trees depend on, places left aside, abbreviations opened."""
     found: set[tuple[str, int]] = set()
-    opened: set[str] = set()
-    stack = list(trees)
-    while stack:
-        for node in walk(stack.pop()):
+    for tree in trees:
+        for node in walk(tree):
             if isinstance(node, Name | At):
-                if node.name not in where:
-                    found.add((node.name, node.order))
-                elif node.name not in opened:
-                    opened.add(node.name)
-                    stack.append(where[node.name])
+                found |= reach.get(node.name) or {(node.name, node.order)}
     return found
 
 
-def explicit(equations: Iterable[Equation], orders: Mapping[str, int], where: Mapping[str, Node]) -> list[Equation]:
+def explicit(equations: Iterable[Equation], orders: Mapping[str, int], reach: Reach) -> list[Equation]:
     """The equations, with `determines` where one side is just a highest derivative that nothing else in the line needs.
 
     The right side of such a line is free of every derivative that another line gives, so that the lines can be
@@ -54,7 +60,7 @@ def explicit(equations: Iterable[Equation], orders: Mapping[str, int], where: Ma
             if not isinstance(left, Name) or not left.order or orders.get(left.name) != left.order:
                 continue
             target = (left.name, left.order)
-            if target not in candidates and target not in derivatives([right], where):
+            if target not in candidates and target not in derivatives([right], reach):
                 candidates[target] = index
                 turned[-1] = replace(equation, left=left, right=right, determines=target)
                 break
@@ -62,6 +68,6 @@ def explicit(equations: Iterable[Equation], orders: Mapping[str, int], where: Ma
     for target, index in reversed(candidates.items()):
         line = turned[index]
         others = {other for other in candidates if other != target and turned[candidates[other]].determines}
-        if derivatives([line.right], where) & others:
+        if derivatives([line.right], reach) & others:
             turned[index] = replace(line, determines=None)
     return turned

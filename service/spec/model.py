@@ -2,10 +2,10 @@
 
 from __future__ import annotations
 
-from typing import Annotated, Any, Literal
+from typing import Annotated, Any, Literal, Self
 
-from pydantic import BaseModel, ConfigDict, Field, PrivateAttr
-from pydantic_core import to_json
+from pydantic import BaseModel, ConfigDict, Field, PrivateAttr, model_validator
+from pydantic_core import PydanticCustomError, to_json
 
 from service.canonical import fingerprint
 
@@ -75,6 +75,12 @@ class FunctionalPart(Part):
         None, description="Formula of values at places and parameters; `0` asks only for what satisfies the conditions",
         examples=["T", "x(T)^2"],
     )  # fmt: skip
+
+    @model_validator(mode="after")
+    def _something_sought(self) -> Self:
+        if self.integrand is None and self.endpoint is None:
+            raise PydanticCustomError("no_functional", "integrand, endpoint or both are needed")
+        return self
 
 
 class SolvePart(Part):

@@ -69,6 +69,11 @@ def _complaint(place: str, details: list[ErrorDetails], source: Any) -> Complain
             known = str(context["expected"]).replace("'", '"')
             message = f"Here stands {_shown(detail['input'])}; known: {known}."
             return Complaint(place, None, "unknown-value", message, f"Write {known}.")
+        case "no_functional":
+            hint = (
+                'Add "integrand", "endpoint" or both; "endpoint": "0" asks only for a curve that meets all conditions.'
+            )
+            return Complaint(place, None, "no-functional", "Nothing is sought: there is no functional.", hint)
         case "too_long" | "too_short":
             return _count(place, context, others)
         case "string_too_long" | "string_too_short":
