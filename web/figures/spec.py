@@ -12,6 +12,7 @@ from typing import Any
 
 from solvers.curve import Array
 from web.figures.plot import Plot
+from web.figures.ticks import decades, power_of_ten
 
 DIGITS = 7
 """Enough for a picture; the tables and the result document hold the exact numbers."""
@@ -33,11 +34,9 @@ def spec(plot: Plot) -> dict[str, Any]:
         }
         for trace in plot.traces
     ]
-    across: dict[str, Any] = {"title": {"text": _escaped(plot.across)}, "zeroline": False}
-    up: dict[str, Any] = {"title": {"text": _escaped(plot.up)}, "zeroline": False, "exponentformat": "power"}
-    across["exponentformat"] = "power"
+    across, up = _axis(plot.across), _axis(plot.up)
     if plot.logarithmic:
-        up |= {"type": "log", "dtick": 1} if _decades(plot) < 12 else {"type": "log"}
+        up |= _powers(plot)
     if plot.equal:
         up |= {"scaleanchor": "x", "scaleratio": 1}
     if plot.whole_places:
@@ -57,9 +56,21 @@ def data_block(plot: Plot) -> str:
     return text.replace("<", "\\u003c").replace(">", "\\u003e").replace("&", "\\u0026")
 
 
-def _decades(plot: Plot) -> float:
+def _axis(label: str) -> dict[str, Any]:
+    """An axis with its title.
+
+    Plotly raises exponents by an inline style, which the content security policy refuses: so they are written `1e-9`.
+    """
+    text = _escaped(label)
+    return {"title": {"text": text}, "zeroline": False, "exponentformat": "e", "hoverformat": ".6~g"}
+
+
+def _powers(plot: Plot) -> dict[str, Any]:
+    """A logarithmic axis with ticks at powers of ten, their exponents raised by characters."""
     _, _, low, high = plot.extent()
-    return math.log10(high / low) if low > 0 else 0.0
+    marks = decades(10.0 ** math.floor(math.log10(low)), 10.0 ** math.ceil(math.log10(high)))
+    texts = [power_of_ten(mark) for mark in marks]
+    return {"type": "log", "tickmode": "array", "tickvals": list(marks), "ticktext": texts}
 
 
 def _numbers(numbers: Array) -> list[float | None]:

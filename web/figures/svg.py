@@ -13,9 +13,8 @@ import numpy as np
 
 from solvers.curve import Array
 from web.display import number
-from web.display import unit as printed
 from web.figures.plot import Plot, Trace
-from web.figures.ticks import decades, ticks
+from web.figures.ticks import decades, power_of_ten, ticks
 
 WIDTH, HEIGHT = 480, 300
 LEFT, RIGHT, TOP, BOTTOM = 64, 14, 12, 46
@@ -85,7 +84,7 @@ def _axes(plot: Plot, ranges: tuple[float, float, float, float], across: Scale, 
     for mark in decades(low, high) if plot.logarithmic else ticks(low, high):
         y = up(mark)
         parts.append(f'<path class="plot-grid" d="M{LEFT} {y:.1f}H{WIDTH - RIGHT}"/>')
-        label = f"10{printed(f'^{round(math.log10(mark))}')}" if plot.logarithmic else number(mark)
+        label = power_of_ten(mark) if plot.logarithmic else number(mark)
         parts.append(f'<text class="plot-tick" x="{LEFT - 6}" y="{y + 4:.1f}" text-anchor="end">{label}</text>')
     parts += [f'<path class="plot-rug" d="M{across(x):.1f} {floor}v-8"/>' for x in plot.rug.tolist()]
     parts.append(f'<path class="plot-frame" d="M{LEFT} {top}V{floor}H{WIDTH - RIGHT}"/>')

@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import math
 
+from web.display import unit
+
 _STEPS = (1.0, 2.0, 2.5, 5.0, 10.0)
 
 
@@ -21,3 +23,8 @@ def decades(low: float, high: float, most: int = 6) -> tuple[float, ...]:
     first, last = math.ceil(math.log10(low) - 1e-9), math.floor(math.log10(high) + 1e-9)
     stride = max(1, math.ceil((last - first + 1) / most))
     return tuple(10.0**power for power in range(first, last + 1, stride))
+
+
+def power_of_ten(mark: float) -> str:
+    """`10⁻⁹` for 1e-9."""
+    return unit(f"10^{round(math.log10(mark))}")

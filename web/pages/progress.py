@@ -2,13 +2,16 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
-from typing import ClassVar
+from typing import Any, ClassVar
 
 from web import display, links
 from web.pages.page import Page, told
+from web.unit_text import bracketed
 
 REFRESH_SECONDS = 3
+DEFAULT_TIME_LIMIT = 60.0
 
 _SENTENCES = {
     "waiting": "Waiting for a free worker.",
@@ -36,26 +39,19 @@ class ProgressPage(Page):
     state_address: str = told("Where the state can be asked, should the progress not come through.")
 
 
-def progress_page(
-    run_id: str,
-    *,
-    title: str,
-    state: str,
-    time_limit: float,
-    value_unit: str = "",
-    independent: str = "",
-    stopping: bool = False,
-) -> ProgressPage:
-    """`time_limit` in seconds; `stopping` where the run was asked to stop and has not yet."""
+def progress_page(run: Mapping[str, Any], problem: Mapping[str, Any]) -> ProgressPage:
+    """From a run as the interface shows it and its problem document."""
+    independent = problem.get("independent") or {}
+    state, run_id = str(run["state"]), str(run["id"])
     return ProgressPage(
-        title=title or "Untitled problem",
+        title=str(run.get("title") or problem.get("title") or "Untitled problem"),
         run_id=run_id,
         state=state,
         state_tone=display.tone(state),
-        sentence="The run was asked to stop." if stopping else _SENTENCES.get(state, ""),
-        time_limit=display.duration(time_limit),
-        value_unit=display.unit(value_unit),
-        independent=independent,
+        sentence=_SENTENCES.get(state, ""),
+        time_limit=display.duration(float((problem.get("solve") or {}).get("time_limit") or DEFAULT_TIME_LIMIT)),
+        value_unit=display.unit(str(run.get("value_unit") or "")),
+        independent=bracketed(str(independent.get("name") or ""), display.unit(str(independent.get("unit") or ""))),
         refresh=REFRESH_SECONDS,
         page_address=links.run(run_id),
         events_address=links.events(run_id),

@@ -33,7 +33,7 @@ export function enhance(root) {
       put("mesh", `${last.mesh} (${last.intervals} intervals)`);
       put("iteration", String(last.iteration));
       put("value", withUnit(last.value));
-      put("infeasibility", amount(last.infeasibility));
+      put("infeasibility", amount(last.infeasibility, 2));
     }
     drawIterations(part("iterations"), history.iterations);
     drawBreaks(part("breaks"), history.meshes);
