@@ -68,6 +68,8 @@ class Dispatcher:
 
     def close(self) -> None:
         """Stop all; runs in the middle wait for the next start."""
+        if self._closing.is_set():
+            return
         self._closing.set()
         self._engine.close()
         if self._keeper.ident is not None:

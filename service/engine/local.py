@@ -67,6 +67,8 @@ class LocalEngine:
     def close(self) -> None:
         """End all children; what was running or queued ends as CLOSED."""
         with self._changed:
+            if self._closing:
+                return
             self._closing = True
             left = [entry[3] for entry in self._queue]
             self._queue.clear()
