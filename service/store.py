@@ -323,7 +323,7 @@ def _cursor(run: Run) -> str:
 
 def _read_cursor(text: str) -> tuple[float, str]:
     try:
-        created, id = json.loads(base64.urlsafe_b64decode(text + "=" * (-len(text) % 4)))
+        created, id = json.loads(base64.b64decode(text + "=" * (-len(text) % 4), b"-_", validate=True))
         return float(created), str(id)
     except (ValueError, TypeError, binascii.Error) as error:
         raise CursorError("not a cursor of this list") from error

@@ -36,9 +36,8 @@ def upgrade() -> None:
         sql.Column("seconds", number),
         sql.Column("reason", sql.Text),
         sql.CheckConstraint("state IN ('waiting', 'solving', 'finished', 'failed', 'stopped')", name="known_state"),
-        sql.CheckConstraint(
-            "(state = 'solving') = (owner IS NOT NULL AND lease IS NOT NULL)", name="solving_has_an_owner"
-        ),
+        sql.CheckConstraint("(state = 'solving') = (owner IS NOT NULL)", name="solving_has_an_owner"),
+        sql.CheckConstraint("(state = 'solving') = (lease IS NOT NULL)", name="solving_has_a_lease"),
         sql.CheckConstraint("cancel_asked IN (0, 1)", name="cancel_is_yes_or_no"),
         sqlite_strict=True,
     )
