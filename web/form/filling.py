@@ -83,6 +83,8 @@ def _fill_entry(section: Section, row: str, entry: Any) -> dict[str, str] | None
         member, _, index = column.member.partition("/")
         if not index:
             text = _text(rest[member], column) if member in rest else None
+            if text is None and member in rest and column.kind is Kind.CHOICE:
+                return None  # a field of choices cannot be left empty
             if text is not None:
                 fields[f"{row}.{column.key}"] = text
                 del rest[member]

@@ -139,9 +139,9 @@ def _read_record(
     _place_columns(section, pointer, section.name, places)
     places[pointer] = f"{section.name}.{section.columns[0].key}"
     entry: dict[str, Any] = _entry(section, section.name, fields) or {}
-    # A choice always has a value: alone it does not make a record.
-    chosen = {column.member for column in section.columns if column.kind is Kind.CHOICE}
-    return entry if set(entry) - chosen else {}
+    # A choice always has a value: left as it was, it does not make a record.
+    untouched = {column.member: column.choices[0] for column in section.columns if column.kind is Kind.CHOICE}
+    return {} if entry == untouched else entry
 
 
 def _place_columns(section: Section, pointer: str, row: str, places: dict[str, str]) -> None:
