@@ -108,6 +108,12 @@ def factored(tree: Node) -> Node:
     return shorter if size(shorter) < size(tree) else tree
 
 
+def monic(tree: Node) -> Node:
+    """A product without its number and sign; anything else as it is."""
+    term = _monomial([(tree, Fraction(1))])
+    return term.with_coefficient(Fraction(1), False).node() if term.factors else tree
+
+
 def factors_of(tree: Node) -> tuple[Node, list[tuple[Node, Fraction]]]:
     """A product as its number and its other factors with their exponents."""
     term = _monomial([(tree, Fraction(1))])
