@@ -49,7 +49,7 @@ class Dispatcher:
             memory=settings.memory_mb * 2**20,
             cancel_grace=settings.cancel_grace,
         )
-        self._feeding = threading.Lock()
+        self._feeding = threading.RLock()
         self._backlog = True  # runs may be waiting in the store
         self._held: dict[str, Run] = {}  # what the engine has
         self._unwritten: dict[tuple[str, int], tuple[Run, Write]] = {}

@@ -13,6 +13,7 @@ from service.engine.slot import Slot
 
 _log = logging.getLogger(__name__)
 
+_CLOSED = Outcome(Ending.CLOSED, reason="the server was closed")
 _IDLE_SECONDS = 1.0  # how often a slot without a job looks after its child
 
 
@@ -44,10 +45,13 @@ class LocalEngine:
         return Capacity(len(self._slots), max(0, free), sum(slot.alive for slot in self._slots))
 
     def submit(self, job: Job) -> None:
-        """Queue a job."""
+        """Queue a job; after `close` it ends as CLOSED at once."""
         with self._changed:
-            heapq.heappush(self._queue, (-job.priority, job.created, next(self._order), job))
-            self._changed.notify()
+            if not self._closing:
+                heapq.heappush(self._queue, (-job.priority, job.created, next(self._order), job))
+                self._changed.notify()
+                return
+        self._sink.ended(job, _CLOSED)
 
     def cancel(self, id: str) -> bool:
         """Stop a job, queued or running; False where there is none of that name."""
@@ -76,7 +80,7 @@ class LocalEngine:
                 slot.shut()
             self._changed.notify_all()
         for job in left:
-            self._sink.ended(job, Outcome(Ending.CLOSED, reason="the server was closed"))
+            self._sink.ended(job, _CLOSED)
         for thread in self._threads:
             if thread.ident is not None:
                 thread.join()

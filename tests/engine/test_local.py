@@ -116,6 +116,8 @@ def test_closing_ends_every_job_once(make_engine, make_job, log):
     log.wait_for(lambda: log.events)
     engine.close()
     assert sorted(log.order()) == ["queued", "running"]
+    engine.submit(make_job(id="too late"))
+    assert sorted(log.order()) == ["queued", "running", "too late"]
     assert {outcome.ending for _, outcome in log.outcomes} == {Ending.CLOSED}
 
 

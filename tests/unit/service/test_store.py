@@ -357,7 +357,7 @@ def test_the_migrations_lead_to_the_tables_of_the_code(store):
             for (sql_text,) in connection.exec_driver_sql(
                 "SELECT sql FROM sqlite_schema WHERE name != 'alembic_version'"
             )
-        }  # noqa: E501
+        }
         fresh = sql.create_engine("sqlite://")
         schema.METADATA.create_all(fresh)
         with fresh.connect() as other:
