@@ -10,6 +10,7 @@ from jinja2 import Environment, FileSystemLoader, StrictUndefined, select_autoes
 
 from web import links
 from web.pages.page import Page
+from web.wording import with_code
 
 TEMPLATES = Path(__file__).parent / "templates"
 
@@ -22,7 +23,7 @@ def render(page: Page) -> str:
 
 @cache
 def environment() -> Environment:
-    """The one template environment; `links` is its only global of ours."""
+    """The one template environment; `links` is its only global, `with_code` its only filter of ours."""
     made = Environment(
         loader=FileSystemLoader(TEMPLATES),
         autoescape=select_autoescape(default=True, default_for_string=True),
@@ -32,4 +33,5 @@ def environment() -> Environment:
         keep_trailing_newline=True,
     )
     made.globals["links"] = links
+    made.filters["with_code"] = with_code
     return made

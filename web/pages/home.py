@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from datetime import datetime
@@ -10,6 +11,7 @@ from typing import Any, ClassVar
 from markupsafe import Markup
 
 from web import links, snippets
+from web.form.pretty import pretty
 from web.pages.page import Page, told
 from web.pages.runs import RunRow, run_row
 from web.thumbnails import Sketch, sketch_picture
@@ -58,6 +60,7 @@ def home_page(
     now: datetime,
 ) -> HomePage:
     """The page; `recent` holds runs as `web.pages.runs.run_row` takes them, `example` is a short document as JSON."""
+    shown = pretty({name: part for name, part in json.loads(example).items() if name != "notes"})
     return HomePage(
         title="Optimal curves, shapes and motions",
         cards=tuple(
@@ -71,6 +74,6 @@ def home_page(
             for sample in samples
         ),
         recent=tuple(run_row(run, now) for run in recent),
-        curl=snippets.curl(example, base_url),
-        python=snippets.python(example, base_url),
+        curl=snippets.curl(shown, base_url),
+        python=snippets.python(shown, base_url),
     )

@@ -7,6 +7,8 @@ from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from typing import Any, ClassVar
 
+from web.form.language import Example, language
+from web.form.pretty import pretty
 from web.pages.page import Page, told
 
 _METHODS = ("get", "post", "put", "patch", "delete")
@@ -85,6 +87,7 @@ class ReferencePage(Page):
     groups: tuple[Group, ...] = told("The operations.")
     shapes: tuple[Shape, ...] = told("The documents that go in and come out, with their members.")
     example: str = told("A whole problem document as JSON, or empty.")
+    language: tuple[Example, ...] = told("What may stand in a formula.")
 
 
 def reference_page(description: Mapping[str, Any]) -> ReferencePage:
@@ -102,9 +105,10 @@ def reference_page(description: Mapping[str, Any]) -> ReferencePage:
         title="HTTP interface",
         version=description["info"]["version"],
         introduction=description["info"].get("description", ""),
-        groups=tuple(Group(title, tuple(operations)) for title, operations in groups.items()),
+        groups=tuple(Group(title.capitalize(), tuple(operations)) for title, operations in groups.items()),
         shapes=tuple(_shape(name, schema) for name, schema in schemas.items() if schema.get("properties")),
-        example=json.dumps(examples[0], indent=2, ensure_ascii=False) if examples[0] else "",
+        example=pretty(examples[0]) if examples[0] else "",
+        language=language(),
     )
 
 
@@ -128,7 +132,7 @@ def _operation(method: str, address: str, operation: Mapping[str, Any]) -> Opera
         body=", ".join(operation.get("requestBody", {}).get("content", {})),
         answers=tuple(
             Answer(status, answer.get("description", ""), tuple(answer.get("content", ())))
-            for status, answer in operation.get("responses", {}).items()
+            for status, answer in sorted(operation.get("responses", {}).items())
         ),
     )
 
