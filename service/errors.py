@@ -25,6 +25,7 @@ from starlette.responses import HTMLResponse, Response
 from service.complaints import Refused
 from service.methods import allowed
 from service.negotiation import wants_page
+from service.run import IdempotencyError, QueueFullError, StoreError, StoreFullError
 
 PROBLEM_JSON = "application/problem+json"
 
@@ -162,6 +163,12 @@ _TYPES = (
         "This is a fault of the service, not of the request. It was logged; the same request may fail again.",
     ),
     ProblemType(
+        "not-ready",
+        503,
+        "The service is not ready",
+        "The database cannot be written, or no worker is up yet. The body says which.",
+    ),
+    ProblemType(
         "busy",
         503,
         "The service cannot take another run now",
@@ -170,6 +177,14 @@ _TYPES = (
     ),
 )
 TYPES: Mapping[str, ProblemType] = {kind.name: kind for kind in _TYPES}
+_RETRY_AFTER = "5"
+_KEEPING: tuple[tuple[type[Exception], str, str], ...] = (
+    (IdempotencyError, "idempotency-key", "This Idempotency-Key came with another body before."),
+    (QueueFullError, "busy", "Too many runs are waiting already."),
+    (StoreFullError, "busy", "The disk of the server is full; an administrator has to make room."),
+    (StoreError, "busy", "The database cannot be used now."),
+)
+"""What goes wrong with keeping runs -> problem type and sentence; the first that fits counts."""
 _OF_STATUS = {400: "bad-request", 404: "not-found", 405: "method", 406: "not-acceptable", 413: "too-large"}
 
 
@@ -245,6 +260,11 @@ def install(app: FastAPI) -> None:
         assert isinstance(error, RequestValidationError)
         return respond(request, _misread(error))
 
+    def unavailable(request: Request, error: Exception) -> Response:
+        detail, kind = next((detail, kind) for sort, kind, detail in _KEEPING if isinstance(error, sort))
+        headers = {"retry-after": _RETRY_AFTER} if kind == "busy" else {}
+        return respond(request, Fault(kind, detail, headers=headers))
+
     def framework(request: Request, error: Exception) -> Response:
         assert isinstance(error, HTTPException)
         if error.status_code == 405:
@@ -265,19 +285,32 @@ def install(app: FastAPI) -> None:
     app.add_exception_handler(Fault, faulty)
     app.add_exception_handler(Refused, refused)
     app.add_exception_handler(RequestValidationError, misread)
+    for sort, _, _ in _KEEPING:
+        app.add_exception_handler(sort, unavailable)
     app.add_exception_handler(HTTPException, framework)
     app.add_exception_handler(Exception, broken)
 
 
 def _misread(error: RequestValidationError) -> Fault:
-    """Complaints about the query; the values sent are not echoed."""
+    """Complaints about path, query and headers; the values sent are not echoed."""
     complaints = [
         {
             "parameter": str(problem["loc"][-1]),
             "in": str(problem["loc"][0]),
             "code": str(problem["type"]).replace("_", "-"),
-            "message": f"{problem['loc'][-1]}: {problem['msg']}",
+            "message": _MESSAGES.get(problem["type"], "{name}: {message}.").format(
+                name=problem["loc"][-1], message=problem["msg"]
+            ),
         }
         for problem in error.errors()
     ]
-    return Fault("parameters", "; ".join(str(complaint["message"]) for complaint in complaints), complaints=complaints)
+    detail = " ".join(str(complaint["message"]) for complaint in complaints)
+    if all(complaint["in"] == "path" for complaint in complaints):
+        return Fault("not-found", f"There is nothing at this address. {detail}")
+    return Fault("parameters", detail, complaints=complaints)
+
+
+_MESSAGES = {
+    "extra_forbidden": "There is no parameter '{name}'.",
+    "missing": "The parameter '{name}' is missing.",
+}

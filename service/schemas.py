@@ -197,6 +197,7 @@ class Run(Part):
     problem_hash: str
     created: str = Field(description="RFC 3339")
     finished: str | None
+    seconds: float | None = Field(description="of work in the worker")
     verdict: Verdict | None
     value: float | None
     value_error: float | None
@@ -246,6 +247,14 @@ class ReadingDocument(Part):
     relations: list[dict[str, Any]]
     freedom: dict[str, Any]
     notes: list[str]
+
+
+class Readiness(Part):
+    """Whether runs can be accepted and solved."""
+
+    ready: bool
+    database: bool = Field(description="can be written")
+    workers: int = Field(description="how many are up")
 
 
 class _Dialect(GenerateJsonSchema):

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from ipaddress import ip_address
 from urllib.parse import urlsplit
 
 from starlette.datastructures import Headers, MutableHeaders
@@ -66,15 +67,17 @@ class Gate:
             await respond(Request(scope), fault)(scope, receive, send)
 
 
-def known_host(hosts: tuple[str, ...]) -> Callable[[Scope], Fault | None]:
-    """Refuses requests for another name: a page of a foreign site cannot reach us by a name of its own.
+def known_host(hosts: frozenset[str], *, addresses: bool) -> Callable[[Scope], Fault | None]:
+    """Refuses requests for a name that is not ours: a foreign site may let its own name lead here (DNS rebinding).
 
-    That trick (DNS rebinding) makes a browser believe that this server belongs to the foreign site.
+    The browser then believes that this server belongs to that site.  The trick needs a name, so where other machines
+    are let in (`addresses`) any plain address will do.
     """
 
     def objection(scope: Scope) -> Fault | None:
         host = Headers(scope=scope).get("host", "")
-        if "*" in hosts or _without_port(host).lower() in hosts:
+        name = _without_port(host).lower()
+        if "*" in hosts or name in hosts or (addresses and _is_address(name)):
             return None
         return Fault("host", f"This server does not answer for the host name {host!r}.")
 
@@ -100,3 +103,11 @@ def own_origin(scope: Scope) -> Fault | None:
 def _without_port(host: str) -> str:
     name, colon, port = host.rpartition(":")
     return name if colon and port.isdigit() else host
+
+
+def _is_address(name: str) -> bool:
+    try:
+        ip_address(name.removeprefix("[").removesuffix("]"))
+    except ValueError:
+        return False
+    return True

@@ -1,0 +1,119 @@
+"""The curve of a run as a table in several formats: by suffix, or by what the caller accepts."""
+
+from __future__ import annotations
+
+import json
+from typing import Annotated, Any, Literal
+
+from fastapi import APIRouter, Query
+from pydantic import BaseModel, ConfigDict, Field
+from starlette.requests import Request
+from starlette.responses import Response
+
+from service import conditional
+from service.errors import Fault
+from service.negotiation import best
+from service.openapi import failures
+from service.results import result_of
+from service.routes.needs import TheRun, TheServices
+from service.run import Run
+from service.services import Services
+from web import links
+from web.tables import FILE_FORMATS, Table, TableError, table, to_csvw
+
+CSVW_JSON = "application/csvm+json"
+
+
+class Choice(BaseModel):
+    """Which rows and columns.  A parameter that is not known is refused, not ignored."""
+
+    model_config = ConfigDict(extra="forbid")
+
+    rows: int | None = Field(None, description="number of rows, evenly spaced, both ends included")
+    step: float | None = Field(
+        None, description="step in the unit of the first column; the last row is exactly the end, whatever the step"
+    )
+    columns: str | None = Field(None, description="columns with primes, separated by commas, such as x,x',a")
+    derivatives: int = Field(0, description="derivatives of every unknown, 0 to 3, where no columns are named")
+
+
+TheChoice = Annotated[Choice, Query()]
+
+router = APIRouter(prefix=links.API_RUNS, tags=["tables"])
+_MEDIA_TYPES = {suffix: file.media_type.partition(";")[0] for suffix, file in FILE_FORMATS.items()}
+_ANSWERS: dict[int | str, dict[str, Any]] = {
+    200: {"description": "The table", "content": {media_type: {} for media_type in _MEDIA_TYPES.values()}},
+    **failures("not-found", "unfinished", "no-curve", "parameters"),
+}
+
+
+@router.get(
+    "/{id}/table.csv-metadata.json",
+    summary="Describe the columns of the CSV table",
+    response_model=None,
+    responses=failures("not-found", "unfinished", "no-curve", "parameters"),
+)
+def read_metadata(request: Request, run: TheRun, services: TheServices, choice: TheChoice) -> Response:
+    """CSV on the Web: names, units and meanings of the columns of `table.csv` with the same query."""
+    described = to_csvw(_table(run, services, choice), f"table.csv{_query(request)}")
+    return conditional.answer(request, json.dumps(described, ensure_ascii=False, allow_nan=False).encode(), CSVW_JSON)
+
+
+@router.get("/{id}/table.{suffix}", summary="Read the curve as a table", response_model=None, responses=_ANSWERS)
+def read_table(
+    request: Request,
+    run: TheRun,
+    services: TheServices,
+    suffix: Literal["csv", "json", "xlsx", "npz"],
+    choice: TheChoice,
+) -> Response:
+    """At the nodes of the mesh, at `rows` places, or every `step`; the last row is exactly the end.
+
+    Units are in the headings of CSV and XLSX, in `columns` of JSON, and in the metadata document of the CSV table.
+    """
+    return _answer(request, run, _table(run, services, choice), suffix)
+
+
+@router.get(
+    "/{id}/table",
+    summary="Read the curve as a table in the format accepted",
+    response_model=None,
+    responses={**_ANSWERS, **failures("not-acceptable")},
+)
+def negotiate_table(request: Request, run: TheRun, services: TheServices, choice: TheChoice) -> Response:
+    """The same as with a suffix; `Accept` decides between CSV, JSON, XLSX and NPZ."""
+    offers = {media_type: suffix for suffix, media_type in _MEDIA_TYPES.items()}
+    chosen = best(request.headers.get("accept", ""), tuple(offers))
+    if chosen is None:
+        raise Fault("not-acceptable", f"A table can be had as {', '.join(offers)}.")
+    answer = _answer(request, run, _table(run, services, choice), offers[chosen])
+    answer.headers["content-location"] = links.table(run.id, offers[chosen]) + _query(request)
+    answer.headers["vary"] = "Accept"
+    return answer
+
+
+def _table(run: Run, services: Services, choice: Choice) -> Table:
+    result = result_of(run, services.store)
+    if not result["curve"]:
+        raise Fault("no-curve", "This run ended without a curve; its result document says why.")
+    columns = None
+    if choice.columns is not None:
+        columns = [name for part in choice.columns.split(",") if (name := part.strip())]
+    try:
+        return table(result, rows=choice.rows, step=choice.step, columns=columns, derivatives=choice.derivatives)
+    except TableError as error:
+        complaint = {"in": "query", "code": error.code, "message": error.message, "hint": error.hint}
+        raise Fault("parameters", f"{error.message} {error.hint}", complaints=[complaint]) from None
+
+
+def _answer(request: Request, run: Run, made: Table, suffix: str) -> Response:
+    headers = {"content-disposition": f'attachment; filename="curvewright-{run.id[:8]}.{suffix}"'}
+    if suffix == "csv":
+        address = f"{links.api_run(run.id)}/table.csv-metadata.json{_query(request)}"
+        headers["link"] = f'<{address}>; rel="describedby"; type="{CSVW_JSON}"'
+    file = FILE_FORMATS[suffix]
+    return conditional.answer(request, file.write(made), file.media_type, headers=headers)
+
+
+def _query(request: Request) -> str:
+    return f"?{request.url.query}" if request.url.query else ""

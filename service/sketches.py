@@ -1,0 +1,69 @@
+"""Small pictures of the samples: drawn once from their solutions and kept beside them.
+
+`python -m service.sketches` solves all samples and writes the file anew; a test holds it to fresh solutions.
+"""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Mapping
+from functools import cache
+from importlib.resources import files
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from service import samples
+from web.thumbnails import Sketch
+from web.trajectory import read_trajectory
+
+POINTS = 61
+DIGITS = 4
+_SHAPES = ("chute", "chute-over-duct", "hose", "hose-over-bench", "lens-rod", "sleeve", "sleeve-limit")
+_DOWNWARDS = ("chute", "chute-over-duct")
+_DRAWN: Mapping[str, tuple[str, ...]] = {"crucible": ("x", "q")}
+"""Unknowns to draw where it is not only the first one; the second and further ones are scaled to the first."""
+
+
+@cache
+def sketches() -> Mapping[str, Sketch]:
+    """The picture of every sample that has one."""
+    stored = json.loads((files(samples) / "sketches" / "curves.json").read_text("utf-8"))
+    return {name: _sketch(name, [_points(line) for line in lines]) for name, lines in stored.items()}
+
+
+def drawn(name: str, result: Mapping[str, Any]) -> list[list[list[float]]]:
+    """The lines of a sample's picture from its result document: points of the first unknown, then of others."""
+    trajectory = read_trajectory(result)
+    assert trajectory is not None, f"sample {name} has no curve"
+    places = np.linspace(trajectory.start, trajectory.end, POINTS)
+    arc = trajectory.arcs[0]
+    lines = []
+    for unknown in _DRAWN.get(name, trajectory.names[:1]):
+        values = trajectory.evaluate(arc, unknown, 0, places)
+        lines.append([[_short(x), _short(y)] for x, y in zip(places, values, strict=True)])
+    return lines
+
+
+def _sketch(name: str, lines: list[tuple[tuple[float, float], ...]]) -> Sketch:
+    curve, *others = lines
+    scaled = tuple(_scaled(other, curve) for other in others)
+    return Sketch(curve, scaled, true_shape=name in _SHAPES, downwards=name in _DOWNWARDS)
+
+
+def _scaled(
+    line: tuple[tuple[float, float], ...], model: tuple[tuple[float, float], ...]
+) -> tuple[tuple[float, float], ...]:
+    """A line in other units, brought into the height of the first one."""
+    low, high = min(y for _, y in line), max(y for _, y in line)
+    bottom, top = min(y for _, y in model), max(y for _, y in model)
+    return tuple((x, bottom + (y - low) / ((high - low) or 1.0) * (top - bottom)) for x, y in line)
+
+
+def _points(line: list[list[float]]) -> tuple[tuple[float, float], ...]:
+    return tuple((x, y) for x, y in line)
+
+
+def _short(number: float) -> float:
+    return float(f"{number:.{DIGITS}g}")
