@@ -5,6 +5,7 @@ from __future__ import annotations
 import re
 from collections.abc import Callable
 from dataclasses import dataclass
+from itertools import chain, count
 
 from solvers.formula.algebra import add, bare, multiply, negative
 from solvers.formula.derivative import derivative, total_derivative
@@ -15,6 +16,8 @@ from solvers.formula.substitute import expander
 from solvers.lowering import Lowered
 from solvers.problem import Condition, Problem
 
+_SECOND_CHOICE = {"H": "ℋ", "L": "ℒ", "p": "ψ", "λ": "Λ", "μ": "κ", "ν": "χ", "C": "E"}
+
 EXPANDED_LIMIT = 4_000
 """Nodes of a formula whose abbreviations are written out."""
 
@@ -23,10 +26,12 @@ EXPANDED_LIMIT = 4_000
 class Augmented:
     """Integrand and endpoint term with their multipliers; no abbreviation is left.
 
-    `functions` are the names that vary along the curve: the unknowns and the multipliers of what holds everywhere.
+    `along` are the equalities that hold everywhere times their multipliers: it belongs to the integrand, but is zero on
+    the curve.  `functions` are the names that vary along the curve: the unknowns and those multipliers.
     """
 
     integrand: Node
+    along: Node
     terminal: Node
     functions: frozenset[str]
     expand: Callable[[Node], Node]  # a tree of the problem, bare and with its abbreviations written out
@@ -73,10 +78,11 @@ def augment(problem: Problem, lowered: Lowered, check: Callable[[], None]) -> Au
     along = [(add([expand(line.left), negative(expand(line.right))]), line.label) for line in lowered.equalities]
     along += [(excess(condition), condition.label) for condition in problem.constraints if condition.equality]
     varying = _numbered(problem, "μ", len(along))
-    for multiplier, (body, label) in zip(varying, along, strict=True):
-        integrand.append(multiply([Name(multiplier), body]))
+    zero_terms = [multiply([Name(multiplier), body]) for multiplier, (body, _) in zip(varying, along, strict=True)]
+    for multiplier, (_, label) in zip(varying, along, strict=True):
         notes.append(f"{multiplier} is the multiplier of {label}; it varies along the curve.")
-    return Augmented(add(integrand), add(terminal), unknowns | set(varying), expand, tuple(notes))
+    functions = unknowns | set(varying)
+    return Augmented(add(integrand), add(zero_terms), add(terminal), functions, expand, tuple(notes))
 
 
 def prescribed(problem: Problem, condition: Condition) -> At | None:
@@ -87,21 +93,19 @@ def prescribed(problem: Problem, condition: Condition) -> At | None:
 
 
 def unused(problem: Problem, letter: str) -> str:
-    """The letter, repeated until no name of the problem looks like it."""
+    """The letter, or another one where a name of the problem looks like it."""
     taken = [problem.independent, *(name for name, _ in problem.where)]
     for records in (problem.unknowns, problem.constants, problem.parameters):
         taken += [record.name for record in records]
     bases = {re.split(r"[\d_]", name)[0] for name in taken}
     bases |= {GREEK.get(base, base) for base in bases}
-    name = letter
-    while name in bases:
-        name += letter
-    return name
+    names = chain((letter, _SECOND_CHOICE[letter]), (letter * times for times in count(2)))
+    return next(name for name in names if name not in bases)
 
 
-def _numbered(problem: Problem, letter: str, count: int) -> list[str]:
+def _numbered(problem: Problem, letter: str, number: int) -> list[str]:
     letter = unused(problem, letter)
-    return [letter] if count == 1 else [f"{letter}{index + 1}" for index in range(count)]
+    return [letter] if number == 1 else [f"{letter}{index + 1}" for index in range(number)]
 
 
 def _varies(problem: Problem, tree: Node) -> bool:

@@ -82,6 +82,8 @@ def necessary_conditions(problem: Problem, deadline: float | None = None) -> Nec
         derivation = _Derivation(problem, lowered, augment(problem, lowered, check), check)
         notes += [*derivation.augmented.notes, *_limits(problem)]
         for condition in derivation.conditions():
+            if condition.kind == "Hamiltonian" and (extreme := _extreme(problem, lowered)):
+                notes.append(extreme)
             parts = sum(size(side) for side in condition.relation.sides)
             if parts <= DISPLAY_LIMIT:
                 found.append(condition)
@@ -96,19 +98,23 @@ def necessary_conditions(problem: Problem, deadline: float | None = None) -> Nec
     return NecessaryConditions(tuple(found), tuple(notes))
 
 
+def _extreme(problem: Problem, lowered: Lowered) -> str:
+    """What the controls do where the Hamiltonian has no stationary point among the allowed values."""
+    extreme = {Seek.MINIMUM: "least", Seek.MAXIMUM: "greatest"}.get(problem.seek)
+    if extreme is None or not lowered.controls:
+        return ""
+    names = ", ".join(primed(quantity) for quantity in lowered.controls)
+    return f"Of all allowed values of {names}, those of the optimum make the Hamiltonian {extreme}."
+
+
 def _limits(problem: Problem) -> Iterator[str]:
     """Say which inequalities the formulas leave out."""
     infinity = float("inf")
     limits = [condition.label for condition in problem.constraints if not condition.equality]
     limits += [f"bounds of {u.name}" for u in problem.unknowns if (u.lower, u.upper) != (-infinity, infinity)]
     if limits:
-        named = ", ".join(dict.fromkeys(limits))
+        named = "; ".join(dict.fromkeys(limits))
         yield f"The equations hold where no limit binds ({named}); where one binds, its multiplier joins."
-    lowered = lower(problem)
-    extreme = {Seek.MINIMUM: "least", Seek.MAXIMUM: "greatest"}.get(problem.seek)
-    if extreme and lowered.given and lowered.controls:
-        names = ", ".join(primed(quantity) for quantity in lowered.controls)
-        yield f"Of all allowed values of {names}, those of the optimum make the Hamiltonian {extreme}."
     inner = ", ".join(place.label for place in problem.places[1:-1])
     if inner:
         yield f"At {inner} the momenta or costates may jump."
@@ -122,10 +128,17 @@ class _Derivation:
     check: Callable[[], None]
 
     def conditions(self) -> Iterator[Necessary]:
-        return self.hamiltonian_system() if self.lowered.given else self.variational_system()
+        """Euler-Lagrange where the integrand holds every highest derivative and no dynamics give one."""
+        highest = [Name(unknown.name, unknown.order) for unknown in self.problem.unknowns if unknown.order]
+        held = all(self.slope(self.lagrangian, name) != ZERO for name in highest)
+        return self.variational_system() if held and not self.lowered.given else self.hamiltonian_system()
+
+    @property
+    def lagrangian(self) -> Node:
+        return factored(add([self.augmented.integrand, self.augmented.along]))
 
     def variational_system(self) -> Iterator[Necessary]:
-        lagrangian = factored(self.augmented.integrand)
+        lagrangian = self.lagrangian
         orders = {unknown.name: unknown.order for unknown in self.problem.unknowns}
         if self.problem.integrals or self.augmented.functions - orders.keys():
             shown = Name(unused(self.problem, "L"))
@@ -141,13 +154,13 @@ class _Derivation:
                 yield self.condition("Euler-Lagrange", name, self.alternating(slopes), ZERO)
         yield from self.boundary(momenta, sign=1)
         lost = [_spread(momentum, Name(name, k + 1)) for (name, k), momentum in momenta.items()]
-        energy = add([lagrangian, *(negative(term) for term in lost)])
+        energy = add([factored(self.augmented.integrand), *(negative(term) for term in lost)])
         yield from self.free_numbers(factored(energy), lagrangian)
 
     def hamiltonian_system(self) -> Iterator[Necessary]:
         letter = unused(self.problem, "p")
         costates = {q: Name(f"{letter}_{q[0]}" + (f"_{q[1]}" if q[1] else "")) for q in self.lowered.states}
-        terms = [self.explicit(self.augmented.integrand)]
+        terms = [self.explicit(self.lagrangian)]
         for (name, k), costate in costates.items():
             terms.append(multiply([costate, self.explicit(Name(name, k + 1))]))
         hamiltonian, shown = add(terms), Name(unused(self.problem, "H"))

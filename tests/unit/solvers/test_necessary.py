@@ -180,7 +180,8 @@ def test_the_shortest_way_to_a_curve_meets_it_at_a_right_angle():
 
 def test_the_swinging_load_has_costates_of_second_order_states():
     given = problem(
-        {"x": 2, "q": 2, "a": 0}, independent="t", ends=("0", "T"), endpoint="T", parameters=["T"], constants=["g", "l"],
+        {"x": 2, "q": 2, "a": 0},
+        independent="t", ends=("0", "T"), endpoint="T", parameters=["T"], constants=["g", "l"],
         dynamics=["x'' = a", "q'' = -(g*sin(q) + a*cos(q))/l"], constraints=["x' <= 1.5"],
         endpoints=["x(0) = 0", "x'(0) = 0", "q(0) = 0", "q'(0) = 0", "x(T) = 3", "x'(T) = 0", "q(T) = 0", "q'(T) = 0"],
     )  # fmt: skip
@@ -234,11 +235,26 @@ def test_a_free_number_inside_has_its_own_condition():
 def test_letters_of_the_problem_are_not_taken_twice():
     given = problem({"y": 1}, "y'^2", constants=["λ", "lambda1", "L", "C"], integrals=["integral(y) = 1"])
     assert texts(necessary_conditions(given)) == [
-        "LL: LL = y'^2 + λλ*y",
-        "y: 2*y'' = λλ",
+        "ℒ: ℒ = y'^2 + Λ*y",
+        "y: 2*y'' = Λ",
         "y: y' = 0 at x = 0",
         "y: y' = 0 at x = 1",
-        "x: -y'^2 + λλ*y = CC",
+        "x: -y'^2 + Λ*y = E",
+    ]
+
+
+def test_limits_on_derivatives_alone_ask_for_the_hamiltonian():
+    given = problem(
+        {"y": 2}, independent="t", ends=("0", "T"), endpoint="T", parameters=["T"], constraints=["y'' <= 1"],
+        endpoints=["y(0) = 0", "y'(0) = 0", "y(T) = 1", "y'(T) = 0"],
+    )  # fmt: skip
+    assert texts(necessary_conditions(given)) == [
+        "H: H = p_y*y' + p_y_1*y''",
+        "y: p_y' = 0",
+        "y': p_y_1' = -p_y",
+        "y'': p_y_1 = 0",
+        "T: H = -1 at t = T",
+        "t: H = C",
     ]
 
 

@@ -1,0 +1,232 @@
+"""How a document was understood: roles and orders, what is free, units, and every formula as mathematics."""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Iterator, Mapping
+from typing import Any
+
+from service.assemble.matching import Matching
+from service.assemble.orders import derivatives, reach_of
+from service.complaints import listing, pointer
+from service.spec import Document
+from solvers.formula.mathml import Range, functional_mathml, mathml
+from solvers.formula.nodes import At, Call, Name, Node, Number, Relation, walk
+from solvers.formula.parser import parse_expression, parse_relation
+from solvers.formula.printer import numeral, text
+from solvers.formula.tokens import read_name
+from solvers.lowering import Quantity, lower, primed
+from solvers.necessary import necessary_conditions
+from solvers.problem import Problem, Unknown
+from web.unit_text import per
+
+Json = dict[str, Any]
+
+NECESSARY_SECONDS = 1.0
+"""How long the necessary conditions may take."""
+
+
+def read_back(problem: Problem, document: Document) -> Json:
+    """The reading of the developers' guide without `necessary`: as JSON, all numbers in the user's units.
+
+    `problem` is what the document was assembled to; formulas are shown as the document has them.
+    """
+    roles = _Roles(problem)
+    return {
+        "independent": {
+            "name": problem.independent,
+            "unit": problem.independent_unit.text,
+            "from": _end(document.independent.start),
+            "to": _end(document.independent.end),
+        },
+        "unknowns": [roles.unknown(unknown) for unknown in problem.unknowns],
+        "parameters": [{"name": parameter.name, "unit": parameter.unit.text} for parameter in problem.parameters],
+        "constants": [
+            {
+                "name": constant.name,
+                "value": _shown(constant.value, constant.unit.factor),
+                "unit": constant.unit.text,
+                "tolerance": _shown(constant.tolerance, constant.unit.factor),
+            }
+            for constant in problem.constants
+        ],
+        "functional": _functional(problem, document),
+        "relations": list(_relations(problem, document)),
+        "freedom": roles.freedom(),
+        "notes": list(_notes(document)),
+    }
+
+
+def with_necessary(reading: Mapping[str, Any], problem: Problem, seconds: float = NECESSARY_SECONDS) -> Json:
+    """The reading with the necessary conditions in symbols, as far as they are found within `seconds`."""
+    result = necessary_conditions(problem, time.monotonic() + seconds)
+    necessary = [
+        {"kind": found.kind, "for": found.subject, "mathml": found.mathml, "text": found.text}
+        for found in result.conditions
+    ]
+    return {**reading, "necessary": necessary, "notes": [*reading["notes"], *result.notes]}
+
+
+class _Roles:
+    """What determines each unknown, and what is left to choose."""
+
+    def __init__(self, problem: Problem) -> None:
+        self.problem = problem
+        self.lowered = lower(problem)
+        self.reach = reach_of(problem.where)
+        equations: list[tuple[tuple[Node, ...], str]] = [
+            ((line.left, line.right), line.label) for line in self.lowered.equalities
+        ]
+        equations += [((c.body,), c.label) for c in problem.constraints if c.equality]
+        self.labels = [label for _, label in equations]
+        open_quantities = {primed(quantity): quantity for quantity in self.lowered.controls}
+        self.matching = Matching([self._served(trees, open_quantities) for trees, _ in equations])
+
+    def _served(self, trees: tuple[Node, ...], quantities: Mapping[str, Quantity]) -> list[str]:
+        """What an equation can determine: higher derivatives first, so that a force stays a choice."""
+        named = derivatives(trees, self.reach)
+        return sorted((shown for shown, q in quantities.items() if q in named), key=lambda s: (-quantities[s][1], s))
+
+    def unknown(self, unknown: Unknown) -> Json:
+        """One entry of `unknowns`."""
+        free, sentence = self.sentence(unknown)
+        return {
+            "name": unknown.name,
+            "order": unknown.order,
+            "unit": unknown.unit.text,
+            "role": unknown.role.value,
+            "free": free,
+            "sentence": f"{unknown.name}: {sentence}",
+        }
+
+    def sentence(self, unknown: Unknown) -> tuple[bool, str]:
+        """Whether its highest derivative is free, and what determines it otherwise."""
+        highest = (unknown.name, unknown.order)
+        kind = f"state of order {unknown.order}" if unknown.order else "control"
+        if highest in self.lowered.given:
+            return False, f"{kind}, given by its dynamics"
+        if primed(highest) in self.matching.serves:
+            label = self.labels[self.matching.serves[primed(highest)]]
+            return False, f"{kind if unknown.order else 'function'}, determined by {label}"
+        if unknown.order:
+            return True, f"function whose derivative {primed(highest)} is free"
+        return True, "control, free everywhere"
+
+    def freedom(self) -> Json:
+        """What there is to choose, and how many conditions there are for it."""
+        problem = self.problem
+        free = [u.name for u in problem.unknowns if self.sentence(u)[0]]
+        conditions = [c for c in (*problem.endpoints, *problem.integrals) if c.equality]
+        chosen = free + [parameter.name for parameter in problem.parameters]
+        sentences = [f"To be found: {listing(chosen)}." if chosen else "Nothing is left to choose along the curve."]
+        count = len(conditions)
+        kinds = "at single places or in the integral" if problem.integrals else "at single places"
+        sentences.append(f"{count or 'No'} condition{'' if count == 1 else 's'} {kinds}.")
+        natural = list(self.natural()) if chosen else []
+        if natural:
+            takes = "its natural boundary condition takes" if len(natural) == 1 else "natural boundary conditions take"
+            sentences.append(f"Nothing fixes {listing(natural)}: {takes} that place.")
+        return {"unknown_functions": len(free), "conditions": count, "sentence": " ".join(sentences)}
+
+    def natural(self) -> Iterator[str]:
+        """The values at the ends that no condition is about."""
+        first, last = self.problem.places[0], self.problem.places[-1]
+        bodies = [condition.body for condition in (*self.problem.endpoints, *self.problem.integrals)]
+        values = [node for body in bodies for node in walk(body) if isinstance(node, At)]
+        for place in (first, last):
+            here = [Name(node.name, node.order) for node in values if node.place == place.tree]
+            named = derivatives(here, self.reach)
+            yield from (f"{primed(state)}({place.label})" for state in self.lowered.states if state not in named)
+
+
+def _functional(problem: Problem, document: Document) -> Json:
+    functional, extent = document.functional, _extent(document)
+    integrand = parse_expression(functional.integrand) if functional.integrand else None
+    endpoint = parse_expression(functional.endpoint) if functional.endpoint else None
+    parts = []
+    if endpoint is not None:
+        parts.append(f"the endpoint term {text(endpoint)}" if integrand is not None else text(endpoint))
+    if integrand is not None:
+        where = f"over {extent.independent} from {text(extent.start)} to {text(extent.end)}"
+        parts.append(f"the integral of {text(integrand)} {where}")
+    sought = "a stationary value" if functional.seek == "stationary" else f"the {functional.seek}"
+    return {
+        "sentence": f"Sought is {sought} of {' plus '.join(parts)}.",
+        "mathml": functional_mathml(functional.seek, integrand, endpoint, extent.independent, extent.start, extent.end),
+        "unit": problem.value_unit.text,
+    }
+
+
+def _relations(problem: Problem, document: Document) -> Iterator[Json]:
+    """Every relation of the document in its order, abbreviations and bounds included."""
+    extent = _extent(document)
+    groups = {"endpoint": problem.endpoints, "pointwise": problem.constraints, "integral": problem.integrals}
+    conditions = {c.pointer: (kind, c.unit.text) for kind, group in groups.items() for c in group}
+
+    def relation(place: str, kind: str, tree: Relation, unit: str, label: str | None = None) -> Json:
+        shown = mathml(tree, label=label, block=True, integrals=extent)
+        return {"pointer": place, "kind": kind, "mathml": shown, "unit": unit}
+
+    for name, formula in document.where.items():
+        tree = Relation((Name(read_name(name)), parse_expression(formula)), ("=",))
+        yield relation(pointer("where", name), "abbreviation", tree, "")
+    rates = {line.pointer: _rate_unit(problem, line.determines) for line in problem.dynamics}
+    for index, formula in enumerate(document.dynamics):
+        place = pointer("dynamics", index)
+        yield relation(place, "dynamics", parse_relation(formula), rates.get(place, ""), formula)
+    for member, kind in (("endpoints", "endpoint"), ("constraints", "pointwise")):
+        for index, formula in enumerate(getattr(document, member)):
+            place = pointer(member, index)
+            kind, unit = conditions.get(place, (kind, ""))
+            yield relation(place, kind, parse_relation(formula), unit, formula)
+    for member, parts, kind in (
+        ("unknowns", document.unknowns, "pointwise"), ("parameters", document.parameters, "parameter"),
+    ):  # fmt: skip
+        for name, part in parts.items():
+            bounds = _bounds(name, part.within)
+            if bounds is not None:
+                yield relation(pointer(member, name, "within"), kind, bounds, part.unit)
+
+
+def _bounds(name: str, within: tuple[float | None, float | None]) -> Relation | None:
+    lower, upper = (None if bound is None else Number(bound, "") for bound in within)
+    subject = Name(read_name(name))
+    if lower is not None and upper is not None:
+        return Relation((lower, subject, upper), ("<=", "<="))
+    if lower is not None:
+        return Relation((subject, lower), (">=",))
+    return None if upper is None else Relation((subject, upper), ("<=",))
+
+
+def _rate_unit(problem: Problem, quantity: Quantity | None) -> str:
+    """The unit of a line of dynamics that gives a highest derivative; "" where it cannot be told."""
+    if quantity is None:
+        return ""
+    unit = next(unknown.unit.text for unknown in problem.unknowns if unknown.name == quantity[0])
+    return per(unit, problem.independent_unit.text, quantity[1]) if unit else ""
+
+
+def _notes(document: Document) -> Iterator[str]:
+    """What someone could have meant otherwise."""
+    functional = document.functional
+    formulas = [*document.where.values(), functional.integrand, functional.endpoint]
+    trees: list[Node] = [parse_expression(formula) for formula in formulas if formula]
+    for formula in (*document.dynamics, *document.endpoints, *document.constraints):
+        trees += parse_relation(formula).sides
+    used = {node.function for tree in trees for node in walk(tree) if isinstance(node, Call)}
+    if "log" in used:
+        yield "log is the natural logarithm."
+
+
+def _extent(document: Document) -> Range:
+    start, end = (parse_expression(_end(end)) for end in (document.independent.start, document.independent.end))
+    return Range(read_name(document.independent.name), start, end)
+
+
+def _end(end: float | str) -> str:
+    return end.strip() if isinstance(end, str) else numeral(Number(end, ""))
+
+
+def _shown(value: float | None, factor: float) -> float | None:
+    """In the user's unit, without the last digit's noise of the conversion."""
+    return None if value is None else float(f"{value / factor:.15g}")
