@@ -28,10 +28,10 @@ _MEANINGS = {
 }
 
 _REASONS = {
-    "infeasible": ("No curve meets all conditions", "Loosen or drop one of the conditions below and solve again."),
+    "infeasible": ("No curve meets all conditions", "Loosen or drop one of these conditions and solve again."),
     "undefined": (
         "A formula is not defined where the search begins",
-        "Give bounds or a guess that keep the sub-expression below inside its domain.",
+        "Give bounds or a guess that keep the sub-expression inside its domain.",
     ),
     "out of time": (
         "The time limit ended the search",

@@ -8,37 +8,38 @@ import numpy as np
 
 from solvers.curve import Array
 from web.display import quantity
+from web.extremes import Extremes
 
 _FLAT = 1e-9
+_WIGGLE = 1e-6
+_SEEN = 1e-4
 _MOST_TOLD = 3
 Jump = tuple[float, float, float]
 
 
-def course(name: str, unit: str, places: Array, values: Array, independent: tuple[str, str]) -> str:
-    """`y falls from 2 m to 1.04 m at x = 1.37 m and ends at 2.4 m`, without a full stop."""
-    seen = np.isfinite(values)
-    places, values = places[seen], values[seen]
-    if not len(values):
-        return f"{name} is not defined here"
-    first, last, low, high = (float(v) for v in (values[0], values[-1], values.min(), values.max()))
-    reach = high - low
-    if reach <= _FLAT * max(abs(low), abs(high)):
+def course(name: str, unit: str, values: Array, reach: Extremes | None, independent: tuple[str, str]) -> str:
+    """`y falls from 2 m to 1.04 m at x = 1.37 m and ends at 2.4 m`, without a full stop.
+
+    `values` run along the curve, NaN where there is none; `reach` are the exact extremes.
+    """
+    values = values[np.isfinite(values)]
+    if not len(values) or reach is None:
+        return f"{name} is not defined here" if not len(values) else f"{name} stays at {amount(0.0, unit)}"
+    first, last = float(values[0]), float(values[-1])
+    extent = reach.highest - reach.lowest
+    if extent <= _FLAT * reach.largest:
         return f"{name} stays at {amount(first, unit)}"
     steps = np.diff(values)
-    small = 1e-4 * reach
-    if np.all(steps >= -1e-6 * reach):
-        return f"{name} rises from {amount(first, unit)} to {amount(last, unit)}"
-    if np.all(steps <= 1e-6 * reach):
-        return f"{name} falls from {amount(first, unit)} to {amount(last, unit)}"
+    for word, sign in (("rises", 1), ("falls", -1)):
+        if np.all(sign * steps >= -_WIGGLE * extent):
+            return f"{name} {word} from {amount(first, unit)} to {amount(last, unit)}"
     parts = [f"{name} starts at {amount(first, unit)}"]
-    turns = sorted((int(at) for at in (values.argmin(), values.argmax())), key=lambda at: float(places[at]))
-    for at in turns:
-        value = float(values[at])
-        if min(abs(value - first), abs(value - last)) > small:
-            word = "lowest" if value == low else "highest"
-            parts.append(f"is {word} with {amount(value, unit)} at {_at(independent, float(places[at]))}")
+    turns = [("lowest", reach.lowest, reach.lowest_at), ("highest", reach.highest, reach.highest_at)]
+    for word, value, place in sorted(turns, key=lambda turn: turn[2]):
+        if min(abs(value - first), abs(value - last)) > _SEEN * extent:
+            parts.append(f"is {word} with {amount(value, unit)} at {_at(independent, place)}")
     parts.append(f"ends at {amount(last, unit)}")
-    return ", ".join(parts[:-1]) + " and " + parts[-1] if len(parts) > 1 else parts[0]
+    return ", ".join(parts[:-1]) + " and " + parts[-1]
 
 
 def switching(name: str, unit: str, jumps: Sequence[Jump], independent: tuple[str, str]) -> str:

@@ -38,7 +38,8 @@ class Plot:
     """Lines over common axes.
 
     `finding` says in one sentence what is to be seen; `table` holds some values of it (rows, 1 + lines), NaN where
-    there is none.  `rug` marks places on the lower axis.  `equal` asks for one scale on both axes.
+    there is none.  `rug` marks places on the lower axis.  `equal` asks for one scale on both axes, `from_zero` for a
+    linear axis that begins at 0, `whole_places` for whole numbers along the lower axis.
     """
 
     key: str
@@ -51,6 +52,7 @@ class Plot:
     table_headings: tuple[str, ...]
     logarithmic: bool = False
     equal: bool = False
+    from_zero: bool = False
     whole_places: bool = False
     rug: Array = field(default_factory=lambda: NOTHING)
 
@@ -58,7 +60,8 @@ class Plot:
         """Least and greatest place, least and greatest value over all lines; never of width zero."""
         places = np.concatenate([trace.places for trace in self.traces])
         values = np.concatenate([trace.values for trace in self.traces])
-        return (*_widened(places), *_widened(values))
+        low, high = _widened(values)
+        return (*_widened(places), 0.0 if self.from_zero and not self.logarithmic else low, high)
 
 
 def _widened(numbers: Array) -> tuple[float, float]:

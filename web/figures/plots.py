@@ -11,6 +11,7 @@ import numpy as np
 from solvers.curve import Array
 from web.display import number
 from web.display import unit as printed
+from web.extremes import extremes_of
 from web.figures import findings
 from web.figures.plot import Plot, Trace
 from web.figures.series import jumps, series
@@ -93,7 +94,7 @@ def _over_independent(
         traces.append(Trace(label, places, values, count))
         told.append(
             findings.switching(label, unit, jumps(trajectory, name, order), independent)
-            or findings.course(label, unit, places, values, independent)
+            or findings.course(label, unit, values, extremes_of(trajectory, name, order), independent)
         )
     together = ", ".join(trace.label for trace in traces)
     plot = Plot(
@@ -133,14 +134,13 @@ def _path(trajectory: Trajectory) -> Iterable[Plot]:
     ]
     independent = (trajectory.independent, trajectory.unit)
     told = [
-        findings.course(name, unit, every, values, independent)
+        findings.course(name, unit, values, extremes_of(trajectory, name, 0), independent)
         for name, values in zip(flat, pair, strict=True)
-        if len(values) == len(every)
     ]
     plot = Plot(
         key="path",
         heading=f"Path: {second} over {first}",
-        finding=findings.sentence(told) or f"The path of {first} and {second}.",
+        finding=findings.sentence(told),
         across=bracketed(first, unit),
         up=bracketed(second, unit),
         traces=(Trace(f"{second} over {first}", pair[0], pair[1]),),
@@ -203,6 +203,7 @@ def _mesh(trajectory: Trajectory) -> Iterable[Plot]:
         table=np.column_stack([lefts, widths])[rows],
         table_headings=(bracketed("interval begins at", unit), bracketed("length", unit)),
         logarithmic=float(widths.max() / widths.min()) > 20,
+        from_zero=True,
         rug=edges if len(edges) <= 400 else edges[:: len(edges) // 400 + 1],
     )
 

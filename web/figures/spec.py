@@ -28,7 +28,7 @@ def spec(plot: Plot) -> dict[str, Any]:
             "name": trace.label,
             "x": _numbers(trace.places),
             "y": _numbers(trace.values),
-            "line": {"color": trace.colour, "dash": trace.line.dash, "width": 2.2},
+            "line": {"color": trace.colour, "dash": trace.line.dash, "width": 2.2, "simplify": False},
             "connectgaps": False,
             "hovertemplate": f"{_escaped(plot.across)} = %{{x}}<br>{_escaped(trace.label)} = %{{y}}<extra></extra>",
         }
@@ -37,6 +37,8 @@ def spec(plot: Plot) -> dict[str, Any]:
     across, up = _axis(plot.across), _axis(plot.up)
     if plot.logarithmic:
         up |= _powers(plot)
+    elif plot.from_zero:
+        up |= {"rangemode": "tozero"}
     if plot.equal:
         up |= {"scaleanchor": "x", "scaleratio": 1}
     if plot.whole_places:

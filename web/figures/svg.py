@@ -49,7 +49,7 @@ def _margins(plot: Plot, extent: tuple[float, float, float, float], top: float) 
         low, high = floor, ceiling if ceiling > floor else floor * 10
     else:
         air = 0.05 * (high - low)
-        low, high = low - air, high + air
+        low, high = low if plot.from_zero else low - air, high + air
     if plot.whole_places:
         left, right = left - 0.2, right + 0.2
     if plot.equal:

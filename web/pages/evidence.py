@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from typing import Any
 
 from web import display
-from web.tables import Extremes
+from web.extremes import Extremes
 from web.verdicts import check_method, reason_heading
 
 Rows = tuple[tuple[str, ...], ...]

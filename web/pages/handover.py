@@ -9,6 +9,7 @@ from typing import Any
 from web import display, links
 from web.tables import FILE_FORMATS, Choice, TableError
 from web.trajectory import read_trajectory
+from web.unit_text import bracketed
 
 PREVIEW_ROWS = 12
 
@@ -52,7 +53,7 @@ def preview_of(result: Mapping[str, Any], run_id: str, choice: Choice) -> Previe
         last = (made.arcs[-1], *last)
     return Preview(
         choice=choice,
-        headings=made.headings,
+        headings=(*(("arc",) if made.arcs else ()), *(bracketed(c.name, display.unit(c.unit)) for c in made.columns)),
         rows=tuple(cells),
         last=last if len(made.rows) > PREVIEW_ROWS else (),
         total=f"{len(made.rows):,}",

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import re
 from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any, ClassVar
@@ -11,15 +12,17 @@ from markupsafe import Markup
 
 from web import display, links, snippets
 from web.caution import CAUTION_IN_FULL
+from web.extremes import extremes
 from web.figures import Figure, figures
 from web.pages.evidence import Check, Diagnosis, check_of, diagnosis_of, parameters_of, prices_of, reach_of
 from web.pages.handover import Preview, citation_of, facts_of, meshes_of, preview_of
 from web.pages.page import Page, told
 from web.pages.reading import Reading, reading_view, understood
 from web.plotly_assets import GLOBAL_SHEET, SCRIPT, placeholder_ids
-from web.tables import extremes, read_choice
+from web.tables import read_choice
 from web.verdicts import tally, verdict_sentence
 
+EXPONENT_SIGNS = "⁰¹²³⁴⁵⁶⁷⁸⁹⁻"
 MAIN_FIGURES = ("curve", "path")
 
 Pairs = tuple[tuple[str, str], ...]
@@ -38,8 +41,8 @@ class ResultPage(Page):
     state_tone: str = told("Class of the state's tag.")
     verdict: str = told("What the result may be called; empty where there is none.")
     verdict_tone: str = told("Class of the verdict's tag.")
-    meaning: str = told("What the verdict means, in a sentence or two.")
-    value: str = told("The value with its error bound; empty where there is none.")
+    meaning: str = told("What the verdict means, in a sentence or two; empty where the diagnosis says it.")
+    value: Markup = told("The value with its error bound; empty where there is none.")
     value_unit: str = told("Its unit.")
     value_about: str = told("What the value is, in a few words.")
     parameters: Rows = told("Name, value with unit, meaning of each parameter found.")
@@ -90,8 +93,8 @@ def result_page(
         state_tone=display.tone(result.get("state")),
         verdict=verdict,
         verdict_tone=display.tone(verdict, seek),
-        meaning=verdict_sentence(verdict, checks),
-        value=display.with_error(result["value"], result.get("value_error")) if has_value else "",
+        meaning="" if result.get("diagnosis") and verdict in ("", "infeasible") else verdict_sentence(verdict, checks),
+        value=_raised(display.with_error(result["value"], result.get("value_error"))) if has_value else Markup(),
         value_unit=display.unit(result.get("value_unit") or "") if has_value else "",
         value_about=_value_about(result, seek),
         parameters=parameters_of(result),
@@ -117,6 +120,15 @@ def result_page(
         curl=snippets.curl(document, base_url),
         document=document,
         caution=CAUTION_IN_FULL,
+    )
+
+
+def _raised(text: str) -> Markup:
+    """Exponents as markup: in large type the characters for raised digits come out uneven."""
+    parts = re.split(f"([{EXPONENT_SIGNS}]+)", text)
+    plain = str.maketrans(EXPONENT_SIGNS, "0123456789\N{MINUS SIGN}")
+    return Markup().join(
+        Markup("<sup>{}</sup>").format(part.translate(plain)) if count % 2 else part for count, part in enumerate(parts)
     )
 
 

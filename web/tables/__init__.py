@@ -5,7 +5,6 @@ from dataclasses import dataclass
 
 from web.tables.choice import Choice, read_choice
 from web.tables.csv import to_csv, to_csvw, to_json
-from web.tables.extremes import Extremes, extremes
 from web.tables.npz import to_npz
 from web.tables.sampling import MOST_ROWS, Column, Table, TableError, table
 from web.tables.xlsx import to_xlsx
@@ -15,11 +14,9 @@ __all__ = [
     "MOST_ROWS",
     "Choice",
     "Column",
-    "Extremes",
     "FileFormat",
     "Table",
     "TableError",
-    "extremes",
     "read_choice",
     "table",
     "to_csvw",

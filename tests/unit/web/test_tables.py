@@ -7,7 +7,8 @@ import math
 import numpy as np
 import pytest
 
-from web.tables import MOST_ROWS, TableError, extremes, table
+from web.extremes import extremes
+from web.tables import MOST_ROWS, TableError, table
 from web.tables.sampling import even_places, nodes, stepped_places
 from web.trajectory import read_trajectory
 from web.unit_text import per

@@ -10,8 +10,9 @@ import numpy as np
 from numpy.polynomial import legendre
 
 from solvers.curve import Array
-from web.tables.sampling import HIGHEST_DERIVATIVE
 from web.trajectory import Arc, Trajectory, read_trajectory
+
+HIGHEST_DERIVATIVE = 3
 
 
 @dataclass(frozen=True, slots=True)
@@ -45,11 +46,12 @@ def extremes(result: Mapping[str, Any], derivatives: int = HIGHEST_DERIVATIVE) -
     trajectory = read_trajectory(result)
     if trajectory is None:
         return ()
-    lines = (_line(trajectory, name, order) for name in trajectory.names for order in range(derivatives + 1))
+    lines = (extremes_of(trajectory, name, order) for name in trajectory.names for order in range(derivatives + 1))
     return tuple(line for line in lines if line is not None)
 
 
-def _line(trajectory: Trajectory, name: str, order: int) -> Extremes | None:
+def extremes_of(trajectory: Trajectory, name: str, order: int) -> Extremes | None:
+    """How far one derivative goes; None where it is not defined, or (from the first on) zero everywhere."""
     candidates = [found for arc in trajectory.arcs for found in _candidates(arc, trajectory.pieces(arc, name, order))]
     if not candidates or (order and all(value == 0 for value, _ in candidates)):
         return None
