@@ -68,6 +68,12 @@ def closest(word: str, known: Iterable[str]) -> str | None:
     return found[0] if found else None
 
 
+def sentence(text: str) -> str:
+    """The text with a capital letter at the start and a full stop at the end, where it has none."""
+    text = text[:1].upper() + text[1:]
+    return text if text.endswith((".", "?", "!", "…")) else text + "."
+
+
 def listing(words: Iterable[str], last: str = "and") -> str:
     """Words as a sentence has them: "a, b and c"."""
     words = tuple(words)

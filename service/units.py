@@ -1,7 +1,7 @@
 """What units mean: dimension and size in coherent SI units, and values written with a unit and a tolerance.
 
-The units of the SI and those accepted beside it are known here; all others are looked up in Pint, by bare name only,
-since Pint evaluates what it is given, and only when one is used, since loading it takes half a second.
+The units of the SI and the most usual others are known here; the rest is looked up in Pint: by bare name only, since
+Pint evaluates what it is given, and only when one is used, since loading it takes half a second and 14 MB.
 """
 
 from __future__ import annotations
@@ -52,6 +52,9 @@ _WITH_PREFIX: dict[str, tuple[float, Dimension]] = {
 _ALONE: dict[str, tuple[float, Dimension]] = {
     "min": (60.0, _dimension(s=1)), "h": (3600.0, _dimension(s=1)), "d": (86400.0, _dimension(s=1)),
     "deg": (math.pi / 180, PURE), "°": (math.pi / 180, PURE), "%": (1e-2, PURE), "‰": (1e-3, PURE),
+    "in": (0.0254, _dimension(m=1)), "ft": (0.3048, _dimension(m=1)), "rpm": (math.pi / 30, _dimension(s=-1)),
+    "lb": (0.45359237, _dimension(kg=1)), "atm": (101325.0, _dimension(kg=1, m=-1, s=-2)),
+    "Wh": (3600.0, _dimension(kg=1, m=2, s=-2)), "kWh": (3.6e6, _dimension(kg=1, m=2, s=-2)),
     "t": (1e3, _dimension(kg=1)), "ha": (1e4, _dimension(m=2)), "Ohm": (1.0, _WITH_PREFIX["Ω"][1]),
 }  # fmt: skip
 _PINT_BASE = {"meter": 0, "kilogram": 1, "second": 2, "ampere": 3, "kelvin": 4, "mole": 5, "candela": 6}

@@ -16,7 +16,7 @@ from service.assemble.meaning import Meaning, understand
 from service.assemble.names import Kind, declare
 from service.assemble.orders import explicit, find_orders, reach_of
 from service.assemble.places import Places, find_places, settle
-from service.assemble.relations import Sides, conditions, convert, shown_unit
+from service.assemble.relations import Sides, conditions, convert, says_nothing, shown_unit
 from service.complaints import Complaint, Stage, refuse
 from service.spec import Document
 from service.units import Measure
@@ -54,6 +54,8 @@ def assemble(document: Document) -> Problem:
     declared = with_guess(declared, guesses)
     refuse(Stage.UNITS, units.complaints)
 
+    stated = (*formulas.endpoints, *formulas.constraints)
+    refuse(Stage.CONDITIONS, [found for statement in stated for found in says_nothing(statement, meaning)])
     places = find_places(formulas, units, dict(declared.parameters))
     problem = _Builder(document, formulas, meaning, declared, guesses, units, places, sides).problem(value_unit)
     check(problem)

@@ -79,7 +79,7 @@ def _floating_values(problem: Problem, structure: Structure) -> Iterator[Complai
             if value is None:
                 continue
             shown = value[0] + "'" * value[1]
-            message = f"{shown} is free: its value at a single place ({_label(problem, node)}) changes nothing else."
+            message = f"At {_label(problem, node)} alone, {shown} is free: a single value of it changes nothing else."
             hint = f"Leave this out, or let {shown}' appear in integrand or constraints so that {shown} is continuous."
             yield Complaint(pointer, None, "free-derivative", message, hint)
             return

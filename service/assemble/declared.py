@@ -8,7 +8,7 @@ from dataclasses import dataclass
 
 from service.assemble.dimensions import UNCHECKED, Sort
 from service.assemble.names import Names
-from service.complaints import Complaint, Stage, pointer, refuse
+from service.complaints import Complaint, Stage, pointer, refuse, sentence
 from service.spec import Document
 from service.units import ONE, Measure, Quantity, parse_quantity, parse_unit
 from solvers.problem import Constant, Parameter
@@ -89,5 +89,4 @@ def _bounds(place: str, lower: float | None, upper: float | None) -> list[Compla
 
 
 def _complaint(place: str, error: UnitTextError, code: str = "bad-unit") -> Complaint:
-    message = error.message[:1].upper() + error.message[1:] + "."
-    return Complaint(place, None, code, message, error.hint[:1].upper() + error.hint[1:] + ".")
+    return Complaint(place, None, code, sentence(error.message), sentence(error.hint))

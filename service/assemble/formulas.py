@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from typing import TypeVar
 
 from service.assemble.names import Names
-from service.complaints import Complaint, Stage, pointer, refuse
+from service.complaints import Complaint, Stage, pointer, refuse, sentence
 from service.spec import Document
 from solvers.formula.errors import FormulaError
 from solvers.formula.nodes import Node, Number, Relation, Span
@@ -109,8 +109,15 @@ def parse_all(document: Document, names: Names) -> Formulas:
             if isinstance(guess, str | float)
         },
     )
+    complaints += [found for line in formulas.dynamics for found in _no_equation(line)]
     refuse(Stage.FORMULAS, complaints)
     return formulas
+
+
+def _no_equation(line: Statement) -> Iterator[Complaint]:
+    if line.tree.signs != ("=",):
+        message = "A line of dynamics is an equation, with one =."
+        yield line.complaint(line.tree.span, "not-an-equation", message, "Put limits into constraints.")
 
 
 def _read(
@@ -120,8 +127,7 @@ def _read(
     try:
         return parse(text)
     except FormulaError as error:
-        message = error.message[:1].upper() + error.message[1:] + "."
-        hint = error.hint or "see the formula's signs: + - * / ^ ( ) = <= >= and the built-in functions"
+        hint = error.hint or "a formula has numbers, names, + - * / ^ ( ), = <= >= and the built-in functions"
         span = (error.span.start, error.span.end)
-        complaints.append(Complaint(pointer(*place), span, error.code, message, hint))
+        complaints.append(Complaint(pointer(*place), span, error.code, sentence(error.message), sentence(hint)))
         return instead

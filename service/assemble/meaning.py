@@ -8,7 +8,7 @@ from graphlib import CycleError, TopologicalSorter
 
 from service.assemble.formulas import Expression, Formula, Formulas
 from service.assemble.names import Kind, Names
-from service.complaints import Complaint, Stage, listing, refuse
+from service.complaints import Complaint, Stage, listing, refuse, sentence
 from solvers.formula.nodes import FUNCTIONS, At, Call, Name, Node, Relation, Span, children, walk
 
 HIGHEST_ORDER = 6
@@ -165,7 +165,7 @@ class _Checker:
         return self.complaint(span, "order-limit", message, "name a lower derivative as an unknown of its own")
 
     def complaint(self, span: Span, code: str, message: str, hint: str) -> Complaint:
-        return self.formula.complaint(span, code, message + ".", hint[:1].upper() + hint[1:] + ".")
+        return self.formula.complaint(span, code, sentence(message), sentence(hint))
 
     def text(self, span: Span) -> str:
         return self.formula.text[span.start : span.end]
@@ -300,4 +300,4 @@ def _end(end: Expression, meaning: Meaning) -> Iterator[Complaint]:
     if traits.moving or traits.placed or traits.integral or (traits.parameter and not isinstance(end.tree, Name)):
         message = f"An end of {meaning.names.independent} is a number, a formula of constants, or a parameter's name."
         hint = f"{listing(meaning.names.of(Kind.PARAMETER), 'or') or 'a parameter'} can be a free end."
-        yield end.complaint(end.tree.span, "bad-place", message, hint[:1].upper() + hint[1:])
+        yield end.complaint(end.tree.span, "bad-place", message, sentence(hint))

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from enum import Enum
 from types import MappingProxyType
 
-from service.complaints import Complaint, Stage, closest, pointer, refuse
+from service.complaints import Complaint, Stage, closest, pointer, refuse, sentence
 from service.spec import Document
 from solvers.formula.errors import FormulaError
 from solvers.formula.nodes import FUNCTIONS
@@ -63,7 +63,7 @@ def declare(document: Document) -> Names:
         try:
             spelling = read_name(name)
         except FormulaError as error:
-            hint = error.hint or "a name is a letter, then letters, digits and '_'"
+            hint = sentence(error.hint or "a name is a letter, then letters, digits and '_'")
             complaints.append(Complaint(place, None, "bad-name", f"'{name[:40]}' is no name: {error.message}.", hint))
             continue
         if len(spelling) > 40:

@@ -46,28 +46,17 @@ def derivatives(trees: Iterable[Node], reach: Reach) -> set[tuple[str, int]]:
 
 
 def explicit(equations: Iterable[Equation], orders: Mapping[str, int], reach: Reach) -> list[Equation]:
-    """The equations, with `determines` where one side is just a highest derivative that nothing else in the line needs.
-
-    The right side of such a line is free of every derivative that another line gives, so that the lines can be
-    evaluated in any order; a line that is not stays implicit.
-    """
-    equations = list(equations)
-    candidates: dict[tuple[str, int], int] = {}
+    """The equations, with `determines` where one side is just a highest derivative that the other is free of."""
+    taken: set[tuple[str, int]] = set()
     turned: list[Equation] = []
-    for index, equation in enumerate(equations):
+    for equation in equations:
         turned.append(equation)
         for left, right in ((equation.left, equation.right), (equation.right, equation.left)):
             if not isinstance(left, Name) or not left.order or orders.get(left.name) != left.order:
                 continue
             target = (left.name, left.order)
-            if target not in candidates and target not in derivatives([right], reach):
-                candidates[target] = index
+            if target not in taken and target not in derivatives([right], reach):
+                taken.add(target)
                 turned[-1] = replace(equation, left=left, right=right, determines=target)
                 break
-    # Lines that use what another line gives become implicit, the first ones last so that their users decide.
-    for target, index in reversed(candidates.items()):
-        line = turned[index]
-        others = {other for other in candidates if other != target and turned[candidates[other]].determines}
-        if derivatives([line.right], reach) & others:
-            turned[index] = replace(line, determines=None)
     return turned

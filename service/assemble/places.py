@@ -117,10 +117,10 @@ def _range(spot: Spot, parameters: dict[str, Parameter]) -> tuple[float, float]:
 def _ends(formulas: Formulas, first: Spot, last: Spot, parameters: dict[str, Parameter]) -> Iterator[Complaint]:
     end = formulas.ends[1]
     if first.same(last):
-        message = f"from ({first.place.label}) and to ({last.place.label}) are the same place."
+        message = f"The ends, from ({first.place.label}) and to ({last.place.label}), are the same place."
         yield end.complaint(Span(0, len(end.text)), "empty-interval", message, "Let the curve have some length.")
     elif _range(first, parameters)[0] >= _range(last, parameters)[1]:
-        message = f"to ({last.place.label}) never lies beyond from ({first.place.label})."
+        message = f"The end, to ({last.place.label}), never lies beyond from ({first.place.label})."
         hint = "Swap from and to, or change the bounds."
         yield end.complaint(Span(0, len(end.text)), "empty-interval", message, hint)
 

@@ -49,7 +49,7 @@ def _bounds(
     by = listing(values.told_by({variable}))
     lower, upper = (f"{limit / unit.factor:.6g}" for limit in within)
     shown = f"{value / unit.factor:.6g} {unit.text}".strip()
-    message = f"{what} is {shown} by {by}, outside of the bounds {lower} to {upper}."
+    message = f"By {by}, {what} is {shown}: outside of the bounds {lower} to {upper}."
     hint = "Widen the bounds, or change the condition."
     yield Complaint(pointer(member, name, "within"), None, "excluded", message, hint)
 

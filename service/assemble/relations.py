@@ -4,13 +4,15 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass, replace
+from itertools import pairwise
 
 from service.assemble.dimensions import Sort, Units, leader
 from service.assemble.domain import literal, value_of
 from service.assemble.formulas import Formula, Statement
 from service.assemble.meaning import Meaning
+from service.complaints import Complaint
 from service.units import PURE, Measure
-from solvers.formula.nodes import Name, Node, Number, Product, Sum, walk
+from solvers.formula.nodes import Name, Node, Number, Product, Span, Sum, walk
 from solvers.formula.printer import text
 from solvers.problem import Condition
 from solvers.units import PLAIN, Unit
@@ -73,13 +75,22 @@ def shown_unit(measures: list[Measure]) -> Unit:
     return measures[0].coherent.unit if measures else PLAIN
 
 
+def says_nothing(statement: Statement, meaning: Meaning) -> Iterator[Complaint]:
+    """Given numbers side by side: true or false whatever the curve is."""
+    for left, right in pairwise(statement.tree.sides):
+        if meaning.of(left, right).fixed:
+            message = f"'{text(left)}' and '{text(right)}' are both given numbers: this says nothing about the curve."
+            span = Span(left.span.start, right.span.end)
+            yield statement.complaint(span, "says-nothing", message, "Leave it out, or compare with an unknown.")
+
+
 def conditions(
     statement: Statement, sides: Sides, meaning: Meaning, settle: Callable[[Node], Node]
 ) -> Iterator[Condition]:
     """The conditions of a relation.
 
     Neighbours of which one is a given number limit the other; `lower <= body <= upper` is one condition.  Where both
-    depend on the curve, their difference is compared with zero.  Two numbers side by side give nothing.
+    depend on the curve, their difference is compared with zero.
     """
     fixed = [meaning.of(tree).fixed for tree in sides.trees]
     trees = [settle(tree) for tree in sides.trees]
@@ -87,8 +98,6 @@ def conditions(
     pending: Condition | None = None  # a limit on the side to its right, which may get a second one
     for index, sign in enumerate(statement.tree.signs):
         left, right = trees[index], trees[index + 1]
-        if fixed[index] and fixed[index + 1]:
-            continue
         if fixed[index]:
             pending = _limited(right, left, sign, True, label, place, sides.unit)
             if pending.equality or index + 1 == len(statement.tree.signs) or not fixed[index + 2]:

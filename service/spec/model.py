@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Annotated, Any, Literal, Self
 
-from pydantic import BaseModel, ConfigDict, Field, PrivateAttr, model_validator
+from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, PrivateAttr, model_validator
 from pydantic_core import PydanticCustomError, to_json
 
 from service.canonical import fingerprint
@@ -92,10 +92,17 @@ class SolvePart(Part):
     points: Annotated[int, Field(ge=50, le=200_000, description="Limit on the points of the mesh")] = 20_000
 
 
+def _not_true(value: Any) -> Any:
+    """Python takes true for 1; JSON does not."""
+    if value is True:
+        raise PydanticCustomError("literal_error", "expected 1", {"expected": "1"})
+    return value
+
+
 class Document(Part):
     """A problem document, format 1: what one would write on paper, and nothing about the numerical method."""
 
-    format: Literal[1] = Field(description="The format of this document")
+    format: Annotated[Literal[1], BeforeValidator(_not_true)] = Field(description="The format of this document")
     title: str = Field("", max_length=200)
     notes: str = Field("", max_length=20_000)
     independent: IndependentPart
