@@ -3,6 +3,7 @@
     Dispatcher(store, settings)   start()  close()  capacity()
     submit(run, document) -> Run  cancel(id) -> Run | None  delete(id) -> bool    block for a commit: call in a thread
     await wait(id, seconds) -> Run | None  async for event in follow(id, after)   for the event loop
+    await understand(document) -> bytes | None                                    the reading, in a worker
 
 The store is the truth.  The dispatcher holds leases on the runs that it solves and renews them; what it held in an
 earlier life waits again at `start`.  An outcome that cannot be written waits in memory until the disk has room.
@@ -19,6 +20,7 @@ from dataclasses import replace
 from functools import partial
 from typing import Any
 
+from service.engine.inquiry import Inquiries, answer
 from service.engine.local import LocalEngine
 from service.engine.records import Capacity, Ending, Engine, Job, Outcome
 from service.owner import Owner
@@ -49,6 +51,7 @@ class Dispatcher:
             memory=settings.memory_mb * 2**20,
             cancel_grace=settings.cancel_grace,
         )
+        self._inquiries = Inquiries("service.understanding:understand", memory=settings.memory_mb * 2**20)
         self._feeding = threading.RLock()
         self._backlog = True  # runs may be waiting in the store
         self._held: dict[str, Run] = {}  # what the engine has
@@ -71,6 +74,7 @@ class Dispatcher:
         if self._closing.is_set():
             return
         self._closing.set()
+        self._inquiries.close()
         self._engine.close()
         if self._keeper.ident is not None:
             self._keeper.join()
@@ -148,6 +152,11 @@ class Dispatcher:
             run = await asyncio.to_thread(self._store.get, id)
             if run is None or run.state.ended:
                 self._end(id, State.STOPPED if run is None else run.state)
+
+    async def understand(self, document: bytes) -> bytes | None:
+        """The reading of a valid document with its necessary conditions, as JSON text; None where it takes too long."""
+        seconds = self._settings.understand_seconds
+        return answer(await self._inquiries.ask({"seconds": seconds / 2}, document, seconds))
 
     # For the engine
 

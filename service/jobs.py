@@ -8,13 +8,15 @@ from __future__ import annotations
 import json
 import math
 import time
+import traceback
 from collections.abc import Callable, Mapping
+from concurrent.futures import Future, ThreadPoolExecutor
 from dataclasses import replace
 from typing import Any
 
 from service.archive import result_document
 from service.assemble import assemble
-from service.reading import read_back
+from service.reading import read_back, with_necessary
 from service.run import State
 from service.spec import read
 from solvers.problem import Problem
@@ -47,11 +49,14 @@ def perform(
         report(progress_event(progress, problem))
         return stop()
 
-    solution = solve_problem(problem, watch)
+    # The solver leaves Python for most of its time: the symbols are found beside it and delay nobody.
+    with ThreadPoolExecutor(1) as beside:
+        necessary = beside.submit(with_necessary, reading, problem)
+        solution = solve_problem(problem, watch)
     stopped = solution.diagnosis is not None and solution.diagnosis.reason == "stopped"
     state = State.STOPPED if stopped else State.FINISHED
     times = {"read": ready - began}
-    return result_document(document, problem, solution, reading, times, id=id, state=state.value)
+    return result_document(document, problem, solution, _complete(necessary, reading), times, id=id, state=state.value)
 
 
 def solve(head: Mapping[str, Any], body: bytes, report: Report, stop: Stop) -> tuple[Mapping[str, Any], bytes]:
@@ -59,7 +64,8 @@ def solve(head: Mapping[str, Any], body: bytes, report: Report, stop: Stop) -> t
     result = perform(body.decode(), report, stop, id=head["id"], longest=head["time_limit"])
     figures = {name: result[name] for name in _FIGURES}
     text = json.dumps(result, ensure_ascii=False, allow_nan=False, separators=(",", ":"))
-    return {"figures": figures, "stopped": result["state"] == State.STOPPED.value}, text.encode("utf-8", "backslashreplace")
+    stopped = result["state"] == State.STOPPED.value
+    return {"figures": figures, "stopped": stopped}, text.encode("utf-8", "backslashreplace")
 
 
 def progress_event(progress: Progress, problem: Problem) -> dict[str, Any]:
@@ -80,6 +86,16 @@ def progress_event(progress: Progress, problem: Problem) -> dict[str, Any]:
             "breaks": [place / problem.independent_unit.factor for place in breaks],
         }
     return event
+
+
+def _complete(necessary: Future[dict[str, Any]], reading: dict[str, Any]) -> dict[str, Any]:
+    """The reading with its necessary conditions; they are not worth losing a solution."""
+    try:
+        return necessary.result()
+    except Exception as error:
+        traceback.print_exception(error)
+        note = f"The necessary conditions are left out because of an error in their derivation ({error!r})."
+        return {**reading, "notes": [*reading["notes"], note]}
 
 
 def _number(value: float | None, unit: float = 1.0) -> float | None:
