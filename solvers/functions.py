@@ -108,6 +108,7 @@ class Compiled:
     bounds: tuple[tuple[Quantity, Condition], ...]  # the constraints that are plain bounds on a state or control
     conditions: tuple[Condition, ...]  # the conditions that are outputs of the end function
     fixed: tuple[tuple[int, int, Condition], ...]  # (state, place, condition): conditions on a single value
+    rims: tuple[tuple[int, int, Condition], ...]  # (control, place, condition): the same for a control at an end
     constants: tuple[float, ...]
 
 
@@ -150,10 +151,10 @@ def compile_problem(lowered: Lowered) -> Compiled:
     numbers |= {c.name: constants[i] for i, c in enumerate(problem.constants)}
     numbers |= {p.name: parameters[i] for i, p in enumerate(problem.parameters)}
     integrands: list[Node] = []
-    conditions, fixed, end = _end_function(lowered, numbers, parameters, constants, integrands)
+    conditions, fixed, rims, end = _end_function(lowered, numbers, parameters, constants, integrands)
     point, pointwise, bounds = _point_function(lowered, numbers, parameters, constants, integrands)
     values = tuple(c.value for c in problem.constants)
-    return Compiled(lowered, point, end, pointwise, bounds, conditions, fixed, values)
+    return Compiled(lowered, point, end, pointwise, bounds, conditions, fixed, rims, values)
 
 
 def _point_function(
@@ -190,7 +191,9 @@ def _point_function(
 
 def _end_function(
     lowered: Lowered, numbers: dict[str, ca.SX], parameters: ca.SX, constants: ca.SX, integrands: list[Node]
-) -> tuple[tuple[Condition, ...], tuple[tuple[int, int, Condition], ...], EndFunction]:
+) -> tuple[
+    tuple[Condition, ...], tuple[tuple[int, int, Condition], ...], tuple[tuple[int, int, Condition], ...], EndFunction
+]:
     problem = lowered.problem
     values = [ca.SX.sym(f"x{i}", len(lowered.states)) for i in range(len(problem.places))]
     places = ca.SX.sym("t", len(problem.places))
@@ -207,11 +210,15 @@ def _end_function(
         return environments[place_index(problem.places, place)].formula(Name(name, order))
 
     conditions, trees, fixed = [], [], []
+    rims = []
     states = {q: k for k, q in enumerate(lowered.states)}
+    controls = {q: k for k, q in enumerate(lowered.controls)}
     for condition in (*problem.endpoints, *problem.integrals):
         body = condition.body
         if isinstance(body, At) and (body.name, body.order) in states:
             fixed.append((states[body.name, body.order], place_index(problem.places, body.place), condition))
+        elif isinstance(body, At) and (body.name, body.order) in controls:
+            rims.append((controls[body.name, body.order], place_index(problem.places, body.place), condition))
         else:
             conditions.append(condition)
             trees.append(_lift_integrals(body, integrands))
@@ -222,7 +229,7 @@ def _end_function(
     outputs = ca.vertcat(*(outside.formula(tree) for tree in (*trees, term)))
     y = ca.vertcat(*values, places, parameters, totals)
     function = EndFunction(*_with_derivatives("end", y, constants, outputs))
-    return tuple(conditions), tuple(fixed), function
+    return tuple(conditions), tuple(fixed), tuple(rims), function
 
 
 def _total(index: int) -> str:

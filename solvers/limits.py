@@ -73,8 +73,10 @@ def limits(compiled: Compiled, where: Layout, rows: Rows) -> tuple[Array, Array,
     row_lower, row_upper = np.zeros(rows.count), np.zeros(rows.count)
     count = len(where.fractions)
     pointwise = np.array([interval_of(c, constants) for c in compiled.pointwise]).reshape(-1, 2)
-    row_lower[rows.pointwise : rows.integrals] = np.tile(pointwise[:, 0], count)
-    row_upper[rows.pointwise : rows.integrals] = np.tile(pointwise[:, 1], count)
+    row_lower[rows.pointwise : rows.rims] = np.tile(pointwise[:, 0], count)
+    row_upper[rows.pointwise : rows.rims] = np.tile(pointwise[:, 1], count)
+    rims = np.array([interval_of(c, constants) for _, _, c in compiled.rims]).reshape(-1, 2)
+    row_lower[rows.rims : rows.integrals], row_upper[rows.rims : rows.integrals] = rims[:, 0], rims[:, 1]
     conditions = np.array([interval_of(c, constants) for c in compiled.conditions]).reshape(-1, 2)
     row_lower[rows.conditions :], row_upper[rows.conditions :] = conditions[:, 0], conditions[:, 1]
     return lower, upper, row_lower, row_upper

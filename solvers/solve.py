@@ -1,115 +1,113 @@
-"""From a problem to its solution: guess, minimise, refine until the tolerance is met, check, judge."""
+"""From a problem to its solution: the form in which it is solved best, the pursuit, the checks, the verdict."""
 
 from __future__ import annotations
 
 import time
-from dataclasses import dataclass, field
+from collections.abc import Callable
+from functools import partial
 
 import numpy as np
+from numpy.typing import NDArray
 
-from solvers import refinement
-from solvers.collocation import Family
-from solvers.functions import Compiled, compile_problem
+from solvers.curve import Curve
+from solvers.functions import compile_problem
+from solvers.gauge import Gauged, in_parametric_form
 from solvers.guess import guesses
-from solvers.ipopt import Iterate, Minimum, Outcome, Start, minimise
 from solvers.lowering import lower
-from solvers.mesh import Mesh, uniform
 from solvers.problem import Problem
-from solvers.scaling import find_row_sizes, find_scales
-from solvers.solution import MeshStep, Progress, Solution, Watch
-from solvers.trajectory import Trajectory, carry, costate_curve, curve, trajectory
-from solvers.transcription import Program, layout, transcribe
+from solvers.pursuit import End, Pursuit, first_mesh, pursue
+from solvers.regraph import regraph
+from solvers.scaling import find_scales
+from solvers.solution import Solution, Watch
+from solvers.trajectory import costate_curve, curve
+from solvers.transcription import layout
 
-FIRST_INTERVALS = 8
-FIRST_DEGREE = 4
-MESHES = 25
-
-
-@dataclass(slots=True)
-class Campaign:
-    """What is known while a problem is being solved."""
-
-    compiled: Compiled
-    watch: Watch | None
-    deadline: float
-    steps: list[MeshStep] = field(default_factory=list)
-    paths: list[Trajectory] = field(default_factory=list)
-    minima: list[Minimum] = field(default_factory=list)
-    iterations: int = 0
-    stopped: bool = False
-
-    def minimise(self, program: Program, start: Start) -> Minimum:
-        """One mesh, with signs of life."""
-        mesh = program.mesh
-        number = len(self.steps) + 1
-
-        def hear(iterate: Iterate) -> bool:
-            self.iterations += 1
-            if self.watch is None:
-                return False
-            progress = Progress("iteration", number, self.iterations, len(mesh.intervals), mesh.points,
-                                iterate.value * program.value_scale, iterate.infeasibility)  # fmt: skip
-            self.stopped = self.watch(progress) or self.stopped
-            return self.stopped
-
-        return minimise(program, start, time_limit=self.deadline - time.perf_counter(), watch=hear)
+Array = NDArray[np.float64]
 
 
 def solve(problem: Problem, watch: Watch | None = None) -> Solution:
-    """Solve a problem."""
+    """Solve a problem.  Never raises for a numerical failure: that is an outcome with a diagnosis."""
     began = time.perf_counter()
+    deadline = began + problem.options.time_limit
+    for squared in (True, False):
+        gauged = in_parametric_form(problem, _sizes(problem), squared)
+        if gauged is None or (squared and not gauged.squared):
+            continue
+        pursuit = pursue(gauged.problem, watch, deadline)
+        if pursuit.solved or pursuit.end in (End.STOPPED, End.TIME):
+            return _solution(problem, pursuit, gauged, began)
+    return _solution(problem, pursue(problem, watch, deadline), None, began)
+
+
+def _sizes(problem: Problem) -> dict[str, float]:
+    """Typical sizes of the independent variable and the unknowns; the same one where they are of like size."""
     compiled = compile_problem(lower(problem))
-    campaign = Campaign(compiled, watch, began + problem.options.time_limit)
-    mesh = first_mesh(compiled)
-    where = layout(compiled, mesh)
-    guess = guesses(compiled, where)[0]
-    scales = find_scales(compiled, where, guess.z)
-    program = transcribe(compiled, mesh, scales, find_row_sizes(compiled, where, scales, guess.z))
-    start = Start(guess.z / program.scale)
-    tolerance = problem.options.tolerance
-    value_error = np.inf
-    for _ in range(MESHES):
-        at = time.perf_counter()
-        minimum = campaign.minimise(program, start)
-        path = trajectory(program, minimum)
-        found = refinement.estimate(path)
-        degrees = mesh.degrees()
-        campaign.steps.append(MeshStep(len(mesh.intervals), mesh.points, *degrees, path.value, found.worst,
-                                       minimum.iterations, time.perf_counter() - at))  # fmt: skip
-        campaign.paths.append(path)
-        campaign.minima.append(minimum)
-        if minimum.outcome not in (Outcome.SOLVED, Outcome.ACCEPTABLE):
-            break
-        if len(campaign.paths) > 1:
-            value_error = abs(path.value - campaign.paths[-2].value)
-            if found.worst <= tolerance and value_error <= tolerance * max(
-                abs(path.value), 1e-3 * abs(program.value_scale)
-            ):
-                break
-        mesh = refinement.refine(path, found, 0.3 * tolerance)
-        if mesh == program.mesh:
-            mesh = refinement.finer(mesh)
-        where = layout(compiled, mesh)
-        carried = carry(path, mesh, where)
-        scales = find_scales(compiled, where, carried.z)
-        program = transcribe(compiled, mesh, scales, find_row_sizes(compiled, where, scales, carried.z))
-        start = carried.onto(program)
-    path = campaign.paths[-1]
+    where = layout(compiled, first_mesh(len(problem.places) - 1))
+    z = guesses(compiled, where)[0].z
+    span = float(np.ptp(z[where.places])) or 1.0
+    sizes = find_scales(compiled, where, z).states
+    found = {
+        name: float(size) for (name, order), size in zip(compiled.lowered.states, sizes, strict=True) if order == 0
+    }
+    return {problem.independent: span} | {n: span if span / 30 < s < span * 30 else s for n, s in found.items()}
+
+
+def _solution(problem: Problem, pursuit: Pursuit, gauged: Gauged | None, began: float) -> Solution:
+    times = {"total": time.perf_counter() - began}
+    if not pursuit.solved:
+        return Solution(verdict=None, meshes=tuple(pursuit.steps), iterations=pursuit.iterations, times=times,
+                        notes=(pursuit.end.value, pursuit.last[1].status if pursuit.last else ""))  # fmt: skip
+    path = pursuit.paths[-1]
+    names = {p.name for p in problem.parameters}
+    parameters = {p.name: float(v) for p, v in zip(pursuit.problem.parameters, path.parameters, strict=True)
+                  if p.name in names}  # fmt: skip
+    value, value_error = path.value, pursuit.value_error
+    shape, multipliers = curve(path), costate_curve(path)
+    if gauged is not None:
+        shape, multipliers = _as_graph(problem, gauged, shape, multipliers, value)
+        if gauged.squared:
+            value, value_error = float(np.sqrt(value)), value_error / (2 * float(np.sqrt(value)))
     return Solution(
         verdict=None,
-        value=path.value,
+        value=value,
         value_error=value_error if np.isfinite(value_error) else None,
-        parameters={p.name: float(v) for p, v in zip(problem.parameters, path.parameters, strict=True)},
-        curve=curve(path),
-        costates=costate_curve(path),
-        meshes=tuple(campaign.steps),
-        iterations=campaign.iterations,
+        parameters=parameters,
+        curve=shape,
+        curve_error=pursuit.curve_error,
+        costates=multipliers,
+        meshes=tuple(pursuit.steps),
+        iterations=pursuit.iterations,
         times={"total": time.perf_counter() - began},
-        notes=(campaign.minima[-1].status,),
+        notes=(
+            pursuit.end.value,
+            pursuit.last[1].status if pursuit.last else "",
+            "gauge" if gauged else "",
+        ),
     )
 
 
-def first_mesh(compiled: Compiled) -> Mesh:
-    """A coarse mesh whose outermost points do not touch the ends, where integrands like to be infinite."""
-    stretches = len(compiled.lowered.problem.places) - 1
-    return uniform(stretches, FIRST_INTERVALS, FIRST_DEGREE, Family.RADAU)
+def _as_graph(problem: Problem, gauged: Gauged, shape: Curve, multipliers: Curve, value: float) -> tuple[Curve, Curve]:
+    """Curve and costates as functions of the problem's own independent variable."""
+    x = problem.independent
+    factor = 1 / (2 * float(np.sqrt(value))) if gauged.squared else 1.0
+    functions: dict[str, Callable[[Array], Array]] = {}
+    for unknown in problem.unknowns:
+        functions[unknown.name] = partial(shape.evaluate, unknown.name)
+        functions[unknown.name + "'"] = partial(_slope, shape, x, unknown.name)
+    names = {unknown.name for unknown in problem.unknowns}
+    costates = {name: partial(_scaled, multipliers, name, factor) for name in multipliers.functions if name in names}
+    leading = problem.unknowns[0].name
+    graph = regraph(shape.breaks, partial(shape.evaluate, x), functions | {f"costate {n}": f for n, f in costates.items()},
+                    leading)  # fmt: skip
+    return (
+        Curve(graph.breaks, {name: graph.functions[name] for name in functions}),
+        Curve(graph.breaks, {name: graph.functions[f"costate {name}"] for name in costates}),
+    )
+
+
+def _slope(shape: Curve, x: str, name: str, at: Array) -> Array:
+    return shape.evaluate(name + "'", at) / np.maximum(shape.evaluate(x + "'", at), 1e-300)
+
+
+def _scaled(curve_: Curve, name: str, factor: float, at: Array) -> Array:
+    return factor * curve_.evaluate(name, at)

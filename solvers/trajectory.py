@@ -84,7 +84,7 @@ def trajectory(program: Program, minimum: Minimum) -> Trajectory:
     rows = minimum.multipliers / program.row_scale * sign_and_size  # multipliers of the rows in SI
     defects = rows[: count * point.states].reshape(count, point.states)
     weights = np.concatenate([i.scheme.weights for i in program.mesh.intervals])
-    constraints = rows[program.rows.pointwise : program.rows.integrals].reshape(count, point.constraints)
+    constraints = rows[program.rows.pointwise : program.rows.rims].reshape(count, point.constraints)
     return Trajectory(
         program=program,
         z=z,
@@ -174,8 +174,8 @@ def carry(path: Trajectory, mesh: Mesh, where: Layout) -> Carried:
     rows[order.ends : order.pointwise] = costates[where.first[np.array(gauss, int) + 1] - 1].ravel()
     measures = where.measures * (ends - starts)
     density = _sample(path.breaks, _modes(source, path.multipliers, None), points)
-    rows[order.pointwise : order.integrals] = (density * measures[:, None]).ravel()
-    rows[order.integrals :] = path.row_multipliers[source.rows.integrals :]
+    rows[order.pointwise : order.rims] = (density * measures[:, None]).ravel()
+    rows[order.rims :] = path.row_multipliers[source.rows.rims :]
 
     bounds = np.zeros(where.size)
     old_measures = old.measures * (path.places[old.stretch + 1] - path.places[old.stretch])
@@ -196,3 +196,20 @@ def _sample(breaks: Array, modes: list[Array], places: Array) -> Array:
         local = np.clip((2 * places[inside] - left - right) / (right - left), -1.0, 1.0)
         values[inside] = np.polynomial.legendre.legvander(local, len(modes[k]) - 1) @ modes[k]
     return values
+
+
+def distance(now: Trajectory, before: Trajectory) -> float:
+    """The largest difference of the states of two meshes of one problem, relative to each state's size."""
+    if now.states.shape[1] == 0:
+        return 0.0
+    now_at, before_at = _fractions(now), _fractions(before)
+    values = _sample(before_at[0], before.state_modes(), now_at[1])
+    sizes = np.abs(now.states).max(axis=0)
+    return float((np.abs(values - now.states).max(axis=0) / np.where(sizes > 0, sizes, 1.0)).max())
+
+
+def _fractions(path: Trajectory) -> tuple[Array, Array]:
+    """Breaks and points in a variable in which the places are 0, 1, 2, ...: free places may have moved."""
+    places = np.arange(len(path.places), dtype=float)
+    where = path.program.layout
+    return path.program.mesh.breaks(places), where.stretch + where.fractions

@@ -2,8 +2,8 @@
 
 The program's variables z are, interval by interval, the states at its left end, the states and controls at its points,
 then the last states, the places, the parameters and the integrals, each divided by its scale.  Its constraints are, in
-this order: collocation defects, end values of Gauss intervals, pointwise constraints, definitions of the integrals,
-conditions at places.  Every nonlinear number is made by the two functions of `solvers.functions`, mapped; all else
+this order: collocation defects, end values of Gauss intervals, pointwise constraints, controls at the ends,
+definitions of the integrals, conditions at places.  Every nonlinear number is made by the two functions of `solvers.functions`, mapped; all else
 is constant, so that the set-up is a few array operations whatever the size of the mesh.
 """
 
@@ -59,6 +59,7 @@ class Rows:
     defects: int  # M x n, point by point
     ends: int  # n for each Gauss interval
     pointwise: int  # M x c, point by point
+    rims: int
     integrals: int
     conditions: int
     count: int
@@ -132,9 +133,10 @@ def row_order(compiled: Compiled, mesh: Mesh, where: Layout) -> Rows:
     gauss = sum(i.scheme.family is Family.GAUSS for i in mesh.intervals)
     ends = count * point.states
     pointwise = ends + gauss * point.states
-    integrals = pointwise + count * point.constraints
+    rims = pointwise + count * point.constraints
+    integrals = rims + len(compiled.rims)
     conditions = integrals + point.integrals
-    return Rows(0, ends, pointwise, integrals, conditions, conditions + compiled.end.outputs - 1)
+    return Rows(0, ends, pointwise, rims, integrals, conditions, conditions + compiled.end.outputs - 1)
 
 
 def spread(compiled: Compiled, where: Layout, scales: Scales) -> Array:
@@ -216,7 +218,7 @@ def transcribe(compiled: Compiled, mesh: Mesh, scales: Scales, row_sizes: RowSiz
     n = point.states
     count = len(where.fractions)
     scale = spread(compiled, where, scales)
-    gauss = np.flatnonzero([i.scheme.family is Family.GAUSS for i in mesh.intervals])
+    gauss = [i for i in mesh.intervals if i.scheme.family is Family.GAUSS]
     conditions = end.outputs - 1
     rows = row_order(compiled, mesh, where)
     row_scale = np.concatenate(
@@ -224,6 +226,7 @@ def transcribe(compiled: Compiled, mesh: Mesh, scales: Scales, row_sizes: RowSiz
             np.tile(scales.states, count),
             np.tile(scales.states, len(gauss)),
             np.tile(row_sizes.pointwise, count),
+            scales.controls[[control for control, _, _ in compiled.rims]],
             scales.integrals,
             row_sizes.conditions,
         ]
@@ -258,7 +261,7 @@ def transcribe(compiled: Compiled, mesh: Mesh, scales: Scales, row_sizes: RowSiz
     sign = -1.0 if problem.seek is Seek.MAXIMUM else 1.0
     cost = sign * where.measures / row_sizes.value
 
-    linear = _linear_part(mesh, where, rows, n, scale, row_scale, gauss)
+    linear = _linear_part(compiled, mesh, where, rows, scale, row_scale)
     size, outputs = where.size, point.outputs
     constrained = outputs - 1
 
@@ -322,7 +325,7 @@ def transcribe(compiled: Compiled, mesh: Mesh, scales: Scales, row_sizes: RowSiz
     slope = ca.DM(gradient_parts[1]) + ca.mtimes(gradient_parts[2], numbers) + ca.mtimes(gradient_parts[3], end_numbers)
     slopes = (
         ca.DM(jacobian_parts[1]) + ca.mtimes(jacobian_parts[2], numbers) + ca.mtimes(jacobian_parts[3], end_numbers)
-    )  # noqa: E501
+    )
     weight_f, weight_g = ca.MX.sym("lam_f"), ca.MX.sym("lam_g", rows.count)
     padded = np.hstack([target, np.zeros((count, 1), np.int64)]).ravel()
     if rows.count:
@@ -365,7 +368,7 @@ def _nonzeros(function: ca.Function, count: int, *arguments: ca.MX) -> ca.MX:
 
 
 def _linear_part(
-    mesh: Mesh, where: Layout, rows: Rows, n: int, scale: Array, row_scale: Array, gauss: Indices
+    compiled: Compiled, mesh: Mesh, where: Layout, rows: Rows, scale: Array, row_scale: Array
 ) -> tuple[Indices, Indices, Array]:
     """Rows, columns and values of the constant entries of g: slopes, end values and the integrals themselves."""
     all_rows: list[Any] = [rows.integrals + np.arange(len(where.integrals))]
@@ -373,8 +376,17 @@ def _linear_part(
     all_values: list[Any] = [np.ones(len(where.integrals))]
     schemes = {id(i.scheme): i.scheme for i in mesh.intervals}
     owners = np.array([id(i.scheme) for i in mesh.intervals])
-    gauss_rank = {int(k): r for r, k in enumerate(gauss)}
+    gauss = (k for k, i in enumerate(mesh.intervals) if i.scheme.family is Family.GAUSS)
+    gauss_rank = {k: rank for rank, k in enumerate(gauss)}
+    n = compiled.point.states
     states = np.arange(n)
+    for rank, (control, place, _) in enumerate(compiled.rims):
+        owner = int(where.at_place[place]) - (1 if place else 0)
+        scheme = mesh.intervals[owner].scheme
+        side = np.ones(scheme.degree) if place else (-1.0) ** np.arange(scheme.degree)
+        all_rows.append(np.full(scheme.degree, rows.rims + rank))
+        all_columns.append(where.controls[where.first[owner] : where.first[owner + 1], control])
+        all_values.append(side @ scheme.control_modes)
     for key, scheme in schemes.items():
         members = np.flatnonzero(owners == key)
         points = where.first[members][:, None] + np.arange(scheme.degree)  # G x K

@@ -1,0 +1,298 @@
+"""One form of a problem pursued from its first guess, mesh after mesh, until the tolerance is met or hope is lost."""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Callable
+from dataclasses import dataclass, field
+from enum import Enum
+from typing import Any
+
+import numpy as np
+
+from solvers import refinement
+from solvers.collocation import Family
+from solvers.functions import Compiled, compile_problem
+from solvers.guess import guesses
+from solvers.ipopt import Iterate, Minimum, Outcome, Start, minimise
+from solvers.lowering import lower
+from solvers.mesh import Mesh, interval, uniform
+from solvers.problem import Problem
+from solvers.scaling import find_row_sizes, find_scales
+from solvers.solution import MeshStep, Progress, Watch
+from solvers.trajectory import Trajectory, carry, distance, trajectory
+from solvers.transcription import Layout, Program, layout, transcribe
+
+FIRST_INTERVALS = 8
+FIRST_DEGREE = 4
+MESHES = 24
+GROWTH = 2.5
+"""How much larger, in points, one mesh may be than the one before."""
+FLOOR = 1e-9
+"""What the minimiser itself leaves open, relative to the size of the value."""
+
+
+class End(Enum):
+    """How a pursuit ended."""
+
+    CONVERGED = "converged"
+    SETTLED = "settled"  # the value and the states stand still, controls do not sharpen any more
+    POINTS = "points limit"
+    TIME = "out of time"
+    STOPPED = "stopped"
+    INFEASIBLE = "infeasible"
+    UNBOUNDED = "unbounded"
+    UNDEFINED = "undefined"
+    FAILED = "no progress"
+
+
+@dataclass(slots=True)
+class Pursuit:
+    """What is known while one form of a problem is being solved; `paths` are the meshes that were solved."""
+
+    problem: Problem
+    compiled: Compiled
+    end: End = End.FAILED
+    steps: list[MeshStep] = field(default_factory=list)
+    paths: list[Trajectory] = field(default_factory=list)
+    last: tuple[Program, Minimum] | None = None
+    value_error: float = np.inf
+    curve_error: float = np.inf
+    iterations: int = 0
+
+    @property
+    def solved(self) -> bool:
+        """Whether any mesh was solved."""
+        return bool(self.paths)
+
+    @property
+    def value_size(self) -> float:
+        """The size that errors of the value are relative to."""
+        path = self.paths[-1]
+        return max(abs(path.value), 1e-3 * abs(path.program.value_scale))
+
+
+def pursue(problem: Problem, watch: Watch | None, deadline: float) -> Pursuit:
+    """Solve one form of a problem."""
+    compiled = compile_problem(lower(problem))
+    pursuit = Pursuit(problem, compiled)
+    minimiser = _Minimiser(pursuit, watch, deadline)
+    begun = _begin(pursuit, minimiser)
+    if begun is None:
+        return pursuit
+    program, minimum = begun
+    tolerance = problem.options.tolerance
+    for _ in range(MESHES):
+        path = trajectory(program, minimum)
+        found = refinement.estimate(path)
+        pursuit.paths.append(path)
+        minimiser.record(program, minimum, path.value, found.worst)
+        if len(pursuit.paths) > 1:
+            _estimate_errors(pursuit, found)
+            end = _verdict_on_meshes(pursuit, found, tolerance)
+            if end is not None:
+                pursuit.end = end
+                return pursuit
+        mesh = refinement.refine(path, found, 0.3 * tolerance)
+        if mesh == program.mesh:
+            mesh = refinement.finer(mesh)
+        mesh = _limited(mesh, program.mesh, found, problem.options.points)
+        if mesh is None:
+            pursuit.end = End.POINTS
+            return pursuit
+        if time.perf_counter() + pursuit.steps[-1].seconds * 1.2 > deadline:
+            pursuit.end = End.TIME
+            return pursuit
+        step = _next(path, mesh, minimiser)
+        if step is None:
+            return pursuit
+        program, minimum = step
+    pursuit.end = End.SETTLED
+    return pursuit
+
+
+class _Minimiser:
+    """Minimises programs, passes signs of life on and keeps count."""
+
+    def __init__(self, pursuit: Pursuit, watch: Watch | None, deadline: float) -> None:
+        self.pursuit, self.watch, self.deadline = pursuit, watch, deadline
+        self.stopped = False
+
+    def __call__(self, program: Program, start: Start, options: dict[str, Any] | None = None) -> Minimum:
+        left = self.deadline - time.perf_counter()
+        minimum = minimise(program, start, time_limit=left, watch=self._hear(program), options=options)
+        self.pursuit.last = (program, minimum)
+        return minimum
+
+    def _hear(self, program: Program) -> Callable[[Iterate], bool]:
+        mesh = program.mesh
+        count = len(self.pursuit.steps) + 1
+
+        def hear(iterate: Iterate) -> bool:
+            self.pursuit.iterations += 1
+            if self.watch is None:
+                return False
+            self.stopped = self.stopped or self.watch(
+                Progress(
+                    "iteration",
+                    count,
+                    self.pursuit.iterations,
+                    len(mesh.intervals),
+                    mesh.points,
+                    iterate.value * program.value_scale,
+                    iterate.infeasibility,
+                )  # fmt: skip
+            )
+            return self.stopped
+
+        return hear
+
+    def record(self, program: Program, minimum: Minimum, value: float, error: float) -> None:
+        mesh = program.mesh
+        low, high = mesh.degrees()
+        self.pursuit.steps.append(
+            MeshStep(
+                len(mesh.intervals),
+                mesh.points,
+                low,
+                high,
+                value,
+                error,
+                minimum.iterations,
+                minimum.seconds + minimum.set_up,
+            )  # fmt: skip
+        )
+        if self.watch is not None:
+            breaks = self.pursuit.paths[-1].breaks
+            self.stopped = self.stopped or self.watch(
+                Progress(
+                    "mesh",
+                    len(self.pursuit.steps),
+                    self.pursuit.iterations,
+                    len(mesh.intervals),
+                    mesh.points,
+                    value,
+                    None,
+                    error,
+                    tuple(float(b) for b in breaks),
+                )  # fmt: skip
+            )
+
+
+def first_mesh(stretches: int, count: int = FIRST_INTERVALS) -> Mesh:
+    """A coarse mesh; the last interval has Gauss points, so that nothing is evaluated at either end of the curve."""
+    mesh = uniform(stretches, max(count // stretches, 2) if stretches > 1 else count, FIRST_DEGREE)
+    last = mesh.intervals[-1]
+    return Mesh((*mesh.intervals[:-1], interval(last.stretch, last.start, 1.0, Family.GAUSS, FIRST_DEGREE)))
+
+
+SOLVED = (Outcome.SOLVED, Outcome.ACCEPTABLE)
+
+ATTEMPTS: tuple[dict[str, Any], ...] = (
+    {},
+    {"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 0.1},
+    {"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 1e-3, "ipopt.nlp_scaling_method": "gradient-based"},
+)
+"""Settings of the minimiser that are tried in turn on the first mesh."""
+
+
+def _begin(pursuit: Pursuit, minimise_: _Minimiser) -> tuple[Program, Minimum] | None:
+    """The first mesh that is solved, from the first guess and settings that lead somewhere."""
+    compiled = pursuit.compiled
+    stretches = len(pursuit.problem.places) - 1
+    ends: list[End] = []
+    for attempt, options in enumerate(ATTEMPTS):
+        mesh = first_mesh(stretches, FIRST_INTERVALS * (1 if attempt < 2 else 2))
+        where = layout(compiled, mesh)
+        for guess in guesses(compiled, where)[: 2 if attempt else 3]:
+            scales = find_scales(compiled, where, guess.z)
+            program = transcribe(compiled, mesh, scales, find_row_sizes(compiled, where, scales, guess.z))
+            minimum = minimise_(program, Start(guess.z / program.scale), options)
+            if minimum.outcome in SOLVED:
+                return program, minimum
+            ends.append(_end_of(minimum))
+            if ends[-1] in (End.STOPPED, End.TIME):
+                pursuit.end = ends[-1]
+                return None
+    pursuit.end = max(set(ends), key=lambda end: (end is not End.UNDEFINED, ends.count(end)))
+    return None
+
+
+def _end_of(minimum: Minimum) -> End:
+    return {
+        Outcome.INFEASIBLE: End.INFEASIBLE,
+        Outcome.UNBOUNDED: End.UNBOUNDED,
+        Outcome.UNDEFINED: End.UNDEFINED,
+        Outcome.TIME: End.TIME,
+        Outcome.STOPPED: End.STOPPED,
+    }.get(minimum.outcome, End.FAILED)
+
+
+def _next(path: Trajectory, mesh: Mesh, minimise_: _Minimiser) -> tuple[Program, Minimum] | None:
+    """The next mesh, started warm; cold from the same curve where that fails."""
+    compiled = path.program.compiled
+    where: Layout = layout(compiled, mesh)
+    carried = carry(path, mesh, where)
+    scales = find_scales(compiled, where, carried.z)
+    program = transcribe(compiled, mesh, scales, find_row_sizes(compiled, where, scales, carried.z))
+    warm = carried.onto(program)
+    for start in (warm, Start(warm.z)):
+        minimum = minimise_(program, start)
+        if minimum.outcome in SOLVED:
+            return program, minimum
+        end = _end_of(minimum)
+        if end in (End.STOPPED, End.TIME):
+            break
+    minimise_.pursuit.end = end
+    return None
+
+
+def _estimate_errors(pursuit: Pursuit, found: refinement.Estimate) -> None:
+    """Errors of value and curve from the last two meshes: their difference, and how much the mesh has improved since.
+
+    The difference alone is the error of the mesh before; local errors that fell by a factor f let the value's error
+    fall at least by f.
+    """
+    now, before = pursuit.paths[-1], pursuit.paths[-2]
+    last = pursuit.steps[-2].error or 0.0
+    gain = float(np.clip(found.worst / last, 1e-2, 1.0)) if last > 0 else 1.0
+    size = max(abs(now.value), abs(now.program.value_scale))
+    pursuit.value_error = 2 * gain * abs(now.value - before.value) + FLOOR * size
+    pursuit.curve_error = gain * distance(now, before) + found.worst
+
+
+def _verdict_on_meshes(pursuit: Pursuit, found: refinement.Estimate, tolerance: float) -> End | None:
+    """Whether to stop refining."""
+    value_met = pursuit.value_error <= tolerance * pursuit.value_size + 2 * FLOOR * abs(
+        pursuit.paths[-1].program.value_scale
+    )
+    if value_met and found.worst <= tolerance:
+        return End.CONVERGED
+    recent = [step.error or 0.0 for step in pursuit.steps[-4:]]
+    stuck = len(recent) == 4 and min(recent[1:]) > 0.3 * recent[0]
+    if value_met and stuck:
+        return End.SETTLED
+    return None
+
+
+def _limited(mesh: Mesh, old: Mesh, found: refinement.Estimate, points: int) -> Mesh | None:
+    """The mesh with at most so many more points than the old one: the worst intervals first; None beyond the limit."""
+    allowed = min(int(GROWTH * old.points) + 40, points)
+    if mesh.points <= allowed:
+        return mesh
+    if old.points >= points:
+        return None
+    groups: list[list[Any]] = []
+    for piece in old.intervals:
+        inside = [i for i in mesh.intervals if i.stretch == piece.stretch
+                  and piece.start - 1e-15 <= i.start and i.start + i.width <= piece.start + piece.width + 1e-14]  # fmt: skip
+        groups.append(inside)
+    chosen: list[list[Any]] = [[piece] for piece in old.intervals]
+    total = old.points
+    for k in np.argsort(-found.errors):
+        extra = sum(i.scheme.degree for i in groups[k]) - old.intervals[k].scheme.degree
+        if total + extra <= allowed:
+            chosen[k] = groups[k]
+            total += extra
+    limited = Mesh(tuple(piece for group in chosen for piece in group))
+    return None if limited == old else limited
