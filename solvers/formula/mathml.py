@@ -209,11 +209,11 @@ def _operator(function: str) -> str:
 def _number(written: str) -> str:
     """Digits, with a power of ten where the user wrote an exponent."""
     sign = _MINUS if written.startswith("-") else ""
-    digits, _, exponent = written.lstrip("-").lower().partition("e")
-    shown = f"<mn>{escape(digits)}</mn>"
+    digits, _, exponent = escape(written).lstrip("-").lower().partition("e")
+    shown = f"<mn>{digits}</mn>"
     if exponent:
-        power = f"<mo>−</mo><mn>{exponent[1:]}</mn>" if exponent.startswith("-") else f"<mn>{exponent.lstrip('+')}</mn>"
-        shown += f"{_CROSS}<msup><mn>10</mn><mrow>{power}</mrow></msup>"
+        minus = "<mo>−</mo>" if exponent.startswith("-") else ""
+        shown += f"{_CROSS}<msup><mn>10</mn><mrow>{minus}<mn>{exponent.lstrip('+-')}</mn></mrow></msup>"
     return sign + shown
 
 

@@ -6,11 +6,12 @@ import pytest
 from hypothesis import assume, given
 from hypothesis import strategies as st
 
-from solvers.formula.derivative import derivative, substitute, total_derivative
+from solvers.formula.derivative import derivative, total_derivative
 from solvers.formula.evaluate import REAL, evaluate
 from solvers.formula.nodes import FUNCTIONS, Call, Name, Negative, Number, Power, Product, Sum
 from solvers.formula.parser import parse_expression
 from solvers.formula.printer import text
+from solvers.formula.substitute import substitute
 
 POINT = {("y", 0): 0.37, ("y", 1): -0.81, ("k", 0): 1.3, ("x", 0): 0.6}
 
@@ -96,6 +97,7 @@ def test_agrees_with_differences_on_random_formulas(tree):
         ("x(T)^2*k + y", "x", "0"),  # a value at a place moves with no name
         ("integral(y)*y", "y", "integral(y)"),
         ("x(T)^2*k", "x(T)", "2*x(T)*k"),
+        ("T*integral(y)^2", "integral(y)", "2*T*integral(y)"),
     ],
 )
 def test_looks_as_on_paper(formula, name, printed):
