@@ -9,8 +9,7 @@ from __future__ import annotations
 
 import json
 import sys
-import time
-from collections.abc import Callable, Iterator, Mapping
+from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -19,8 +18,6 @@ import click
 
 if TYPE_CHECKING:
     from service.complaints import Refused
-    from solvers.problem import Problem
-    from solvers.solution import Progress, Watch
 
 SOUGHT = {
     "minimum": {"global minimum", "local minimum"},
@@ -167,77 +164,16 @@ def _refuse(refused: Refused, body: bytes) -> None:
 
 def _solved(body: bytes) -> dict[str, Any]:
     """Read, solve and archive in this process; Ctrl-C stops with the best curve so far."""
-    from service.archive import result_document
-    from service.assemble import assemble
-    from service.reading import read_back
     from service.spec import read
+    from service.terminal import interruptible, progress_bar
 
-    started = time.perf_counter()
     with _refusals(body):
-        document = read(body)
-        problem = assemble(document)
-        reading = read_back(problem, document)
-    from solvers.solve import solve as solve_problem
+        tolerance = read(body).solve.tolerance
+        from service.jobs import perform  # loads the solver
 
-    ready = time.perf_counter()
-    with _watching(problem) as watch:
-        solution = solve_problem(problem, watch)
-    times = {"read": ready - started, "all": time.perf_counter() - started}
-    return result_document(document, problem, solution, reading, times)
-
-
-@contextmanager
-def _watching(problem: Problem) -> Iterator[Watch]:
-    """A watch that draws a bar on a terminal (digits reached of those asked for) and turns Ctrl-C into a stop."""
-    import math
-    import signal
-
-    asked = False
-
-    def stop(number: int, frame: object) -> None:
-        nonlocal asked
-        asked = True
-        signal.signal(signal.SIGINT, signal.default_int_handler)  # a second Ctrl-C ends at once
-
-    before = signal.signal(signal.SIGINT, stop)
-    digits = -math.log10(problem.options.tolerance)
-    shown = 0
-    try:
-        with click.progressbar(
-            length=100,
-            label="Solving",
-            show_eta=False,
-            file=sys.stderr,
-            hidden=not sys.stderr.isatty(),
-            item_show_func=_progress_text(problem),
-        ) as bar:
-
-            def watch(progress: Progress) -> bool:
-                nonlocal shown
-                if progress.error is not None and 0 < progress.error < 1:
-                    reached = min(99, int(100 * -math.log10(progress.error) / digits))
-                    shown, step = max(shown, reached), max(0, reached - shown)
-                else:
-                    step = 0
-                bar.update(step, progress)
-                return asked
-
-            yield watch
-            bar.update(100 - shown)
-    finally:
-        signal.signal(signal.SIGINT, before)
-
-
-def _progress_text(problem: Problem) -> Callable[[Progress | None], str]:
-    from web.display import quantity
-
-    def text(progress: Progress | None) -> str:
-        if progress is None:
-            return ""
-        value = None if progress.value is None else progress.value / problem.value_unit.factor
-        return f"mesh {progress.mesh}, iteration {progress.iteration}, {quantity(value, problem.value_unit.text)}"
-
-    return text
+        with progress_bar(tolerance) as report, interruptible() as stop:
+            return perform(body.decode("utf-8-sig"), report, stop)
+    raise AssertionError("a refusal exits")
 
 
 def _suffix(table: Path | None, rows: int | None, step: float | None) -> str:

@@ -54,22 +54,23 @@ def _quality(ranges: list[tuple[str, float]], offer: str) -> float:
 
 @dataclass(frozen=True, slots=True)
 class Preferences:
-    """`wait` seconds (None where not asked for), `whole` for `return=representation`."""
+    """`wait` seconds (None where not asked for), `whole` for `return=representation`.
+
+    `respond-async` together with `wait` asks for an answer at hand only after that time (RFC 7240, section 4.3).
+    """
 
     wait: float | None = None
     respond_async: bool = False
     whole: bool = False
 
-    def applied(self, waited: bool) -> str:
-        """The value of `Preference-Applied`, "" where none was honoured."""
-        honoured = []
-        if self.wait is not None and waited:
-            honoured.append(f"wait={self.wait:g}")
-        if self.respond_async and not waited:
-            honoured.append("respond-async")
-        if self.whole and waited:
-            honoured.append("return=representation")
-        return ", ".join(honoured)
+    def applied(self, *, ended: bool) -> str:
+        """The value of `Preference-Applied`, "" where none was honoured; `ended`: the run did in time."""
+        honoured = {
+            f"wait={self.wait or 0:g}": self.wait is not None,
+            "respond-async": self.respond_async and not ended,
+            "return=representation": self.whole and ended,
+        }
+        return ", ".join(text for text, done in honoured.items() if done)
 
 
 def preferences(prefer: str, longest: float) -> Preferences:

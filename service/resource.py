@@ -41,8 +41,9 @@ def resource(run: Run) -> dict[str, Any]:
 
 
 def has_result(run: Run) -> bool:
-    """True where there is a result document: a finished run, or a stopped one that had a curve by then."""
-    return run.state is State.FINISHED or (run.state is State.STOPPED and run.verdict is not None)
+    """True where there is a result document: a finished run, or a stopped one that had something by then."""
+    stopped_with_some = run.state is State.STOPPED and (run.verdict is not None or run.value is not None)
+    return run.state is State.FINISHED or stopped_with_some
 
 
 def moment(seconds: float) -> str:

@@ -6,7 +6,6 @@ import json
 from typing import Any
 
 from service.errors import Fault
-from service.resource import has_result
 from service.run import Run
 from service.store import Store
 
@@ -15,7 +14,7 @@ def result_text(run: Run, store: Store) -> bytes:
     """As it is stored: JSON in UTF-8."""
     if not run.state.ended:
         raise Fault("unfinished", f"The run is {run.state.value}: no result yet.", headers={"retry-after": "1"})
-    text = store.result(run.id) if has_result(run) else None
+    text = store.result(run.id)
     if text is None:
         reason = f": {run.reason}" if run.reason else ""
         raise Fault("not-found", f"The run {run.state.value} and left no result{reason}.")

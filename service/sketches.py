@@ -9,7 +9,6 @@ import json
 from collections.abc import Mapping
 from functools import cache
 from importlib.resources import files
-from pathlib import Path
 from typing import Any
 
 import numpy as np

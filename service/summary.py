@@ -118,7 +118,8 @@ def _check(check: Mapping[str, Any], result: Mapping[str, Any]) -> Iterator[str]
         if where and where["place"] is not None and result["curve"] is not None:
             independent = result["curve"]["independent"]
             place = display.quantity(where["place"], independent["unit"])
-            yield f"{'':18}worst at {independent['name']} = {place}{', ' + where['subject'] if where['subject'] else ''}"
+            subject = f", {where['subject']}" if where["subject"] else ""
+            yield f"{'':18}worst at {independent['name']} = {place}{subject}"
 
 
 def _diagnosis(diagnosis: Mapping[str, Any] | None) -> Iterator[str]:

@@ -2,7 +2,11 @@
 
 from __future__ import annotations
 
-from fastapi import APIRouter, Depends
+import json
+from typing import Annotated, Any
+
+from fastapi import APIRouter, Depends, Query
+from pydantic import BaseModel, ConfigDict, Field
 from starlette.concurrency import run_in_threadpool
 from starlette.responses import JSONResponse, Response
 
@@ -11,11 +15,20 @@ from service.assemble import assemble
 from service.negotiation import JSON
 from service.openapi import PROBLEM_BODY, REFUSALS, failures
 from service.reading import read_back
-from service.routes.needs import JsonBody, accepts
+from service.routes.needs import JsonBody, TheServices, accepts
+from service.services import Services
 from service.spec import read
 from web import links
 
 router = APIRouter(tags=["check"])
+
+
+class Wish(BaseModel):
+    """What the reading shall hold."""
+
+    model_config = ConfigDict(extra="forbid")
+
+    necessary: bool = Field(False, description="with the necessary conditions in symbols, derived in a worker")
 
 
 @router.post(
@@ -24,13 +37,28 @@ router = APIRouter(tags=["check"])
     response_model=None,
     dependencies=[Depends(accepts(JSON))],
     openapi_extra=PROBLEM_BODY,
-    responses={200: {"model": schemas.ReadingDocument}, **failures(*REFUSALS, "not-acceptable", "foreign-request")},
+    responses={
+        200: {"model": schemas.ReadingDocument},
+        **failures(*REFUSALS, "parameters", "not-acceptable", "foreign-request"),
+    },
 )
-async def check(body: JsonBody) -> Response:
+async def check(body: JsonBody, services: TheServices, wish: Annotated[Wish, Query()]) -> Response:
     """How the problem is understood, or everything that is wrong with it; nothing is kept and nothing is solved."""
-    return JSONResponse(await run_in_threadpool(_reading, body))
+    return JSONResponse(await reading_of(body, services, necessary=wish.necessary))
 
 
-def _reading(body: bytes) -> dict[str, object]:
+async def reading_of(body: bytes, services: Services, *, necessary: bool) -> dict[str, Any]:
+    """The reading of a document; without its necessary conditions where they take too long.  Raises `Refused`."""
+    reading = await run_in_threadpool(_reading, body)
+    if not necessary:
+        return reading
+    whole = await services.dispatcher.understand(body)
+    if whole is None:
+        return {**reading, "notes": [*reading["notes"], "The necessary conditions took too long and are left out."]}
+    with_necessary: dict[str, Any] = json.loads(whole)
+    return with_necessary
+
+
+def _reading(body: bytes) -> dict[str, Any]:
     document = read(body)
     return read_back(assemble(document), document)

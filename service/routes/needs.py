@@ -11,8 +11,8 @@ from starlette.requests import Request
 from service.body import JSON, read_body
 from service.errors import Fault
 from service.negotiation import best
-from service.services import Services
 from service.run import Run
+from service.services import Services
 
 
 def _services(request: Request) -> Services:

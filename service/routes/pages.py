@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import json
-from dataclasses import asdict
+from dataclasses import asdict, replace
 from datetime import UTC, datetime
 from typing import Annotated, Any
 from urllib.parse import parse_qsl
@@ -15,18 +15,16 @@ from starlette.responses import HTMLResponse, RedirectResponse, Response
 
 from service import conditional, samples
 from service.accepting import accept
-from service.assemble import assemble
 from service.body import FORM, read_body
 from service.complaints import Refused
 from service.errors import Fault
-from service.reading import read_back
 from service.resource import resource
 from service.results import shown_result
+from service.routes.check import reading_of
 from service.routes.needs import TheRun, TheServices
 from service.run import CursorError, Run, State
 from service.services import Services
 from service.sketches import sketches
-from service.spec import read
 from web import display, links
 from web.form.draft import Draft, draft_from_post, draft_from_text, empty_draft
 from web.pages.compose import compose_page
@@ -75,52 +73,47 @@ def show_home(request: Request, services: TheServices) -> str:
 
 
 @router.get(links.COMPOSE)
-def show_composer(request: Request, services: TheServices, sample: str = "", run: str = "", view: str = "") -> Response:
+async def show_composer(
+    request: Request, services: TheServices, sample: str = "", run: str = "", view: str = ""
+) -> Response:
     """The composer: empty, or with a sample, or with the problem of a run."""
     if sample:
         draft = draft_from_text(_sample(sample), view)
     elif run:
-        text = services.store.document(run)
+        text = await run_in_threadpool(services.store.document, run)
         if text is None:
             raise Fault("not-found", "There is no run of this address; it may have been deleted.")
         draft = draft_from_text(text, view)
     else:
         return HTMLResponse(render(compose_page(empty_draft(), base_url=_base(request))))
-    return _composer(request, draft)
+    return await _composer(request, services, draft)
 
 
 @router.post(links.COMPOSE)
 async def post_composer(request: Request, services: TheServices, form: TheForm) -> Response:
     """Check, change the view or the rows, or solve: then on to the page of the run."""
-    return await run_in_threadpool(_composed, request, services, form)
-
-
-def _composed(request: Request, services: Services, form: dict[str, str]) -> Response:
-    if name := form.get("sample"):
-        draft = Draft("json", _sample(name), {}, {}, solve=True)
-    else:
-        draft = draft_from_post(form)
+    name = form.get("sample")
+    draft = replace(draft_from_text(_sample(name)), solve=True) if name else draft_from_post(form)
     if not draft.solve or draft.complaints:
-        return _composer(request, draft)
+        return await _composer(request, services, draft)
     try:
-        run, _ = accept(services, draft.text.encode("utf-8", "replace"))
+        run, _ = await run_in_threadpool(accept, services, _bytes(draft))
     except Refused:
-        return _composer(request, draft)
+        return await _composer(request, services, draft)
     return _see(links.run(run.id))
 
 
-def _composer(request: Request, draft: Draft) -> Response:
+async def _composer(request: Request, services: Services, draft: Draft) -> Response:
     """The page with the reading, or with all that is wrong; 422 only where it was to be solved."""
     reading: dict[str, Any] | None = None
     complaints: list[dict[str, Any]] = []
     try:
-        document = read(draft.text.encode("utf-8", "replace"))
-        reading = read_back(assemble(document), document)
+        reading = await reading_of(_bytes(draft), services, necessary=request.method == "POST")
     except Refused as refused:
         complaints = [asdict(complaint) for complaint in refused.complaints]
     page = compose_page(draft, base_url=_base(request), reading=reading, complaints=complaints)
     refused_solve = draft.solve and bool(complaints or draft.complaints)
-    return HTMLResponse(render(page), 422 if refused_solve else 200)
+    return HTMLResponse(await run_in_threadpool(render, page), 422 if refused_solve else 200)
 
 
 @router.get(links.RUNS)
@@ -181,6 +174,10 @@ def _sample(name: str) -> str:
     if name not in samples.ABOUT:
         raise Fault("not-found", f"There is no sample '{name}'.")
     return samples.text(name)
+
+
+def _bytes(draft: Draft) -> bytes:
+    return draft.text.encode("utf-8", "replace")
 
 
 def _see(address: str) -> Response:

@@ -58,10 +58,10 @@ async def start_run(
     """
     wishes = preferences(prefer, services.settings.wait_seconds)
     run, fresh = await run_in_threadpool(accept, services, body, idempotency_key(idempotency_key_))
-    if wishes.wait and not wishes.respond_async:
+    if wishes.wait:
         run = await services.dispatcher.wait(run.id, wishes.wait) or run
     headers = {"location": links.api_run(run.id)}
-    if applied := wishes.applied(run.state.ended):
+    if applied := wishes.applied(ended=run.state.ended):
         headers["preference-applied"] = applied
     if not run.state.ended:
         return JSONResponse(resource(run), 202, {**headers, "retry-after": RETRY_AFTER})
