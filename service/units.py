@@ -126,7 +126,7 @@ def parse_unit(text: str) -> Measure:
         except (OverflowError, ZeroDivisionError):
             total = Measure(factor=math.inf)
         if not 1e-200 < total.factor < 1e200:
-            raise UnitTextError(f"the unit '{text}' is beyond the range of numbers", "choose smaller powers")
+            raise UnitTextError(f"the unit “{text}” is beyond the range of numbers", "choose smaller powers")
     return total
 
 
@@ -145,8 +145,8 @@ def _meaning(name: str) -> tuple[float, Dimension]:
     found = _in_pint(name) if len(name) > 1 else None
     if found is None:
         near = closest(name, (*_ALONE, *_WITH_PREFIX, "mm", "cm", "km", "kg", "ms", "kN", "MPa", "kW"))
-        hint = f"did you mean '{near}'?" if near else "units are names such as m, mm, s, kg, N, deg with * / ^"
-        raise UnitTextError(f"there is no unit '{name[:30]}'", hint)
+        hint = f"did you mean “{near}”?" if near else "units are names such as m, mm, s, kg, N, deg with * / ^"
+        raise UnitTextError(f"there is no unit “{name[:30]}”", hint)
     return found
 
 
@@ -163,7 +163,7 @@ def _in_pint(name: str) -> tuple[float, Dimension] | None:
         return None
     if offset:
         hint = "use K for temperatures, plain ratios for levels"
-        raise UnitTextError(f"the scale '{name}' does not start at zero", hint)
+        raise UnitTextError(f"the scale “{name}” does not start at zero", hint)
     powers.pop("radian", None)
     if not set(powers) <= set(_PINT_BASE) or not factor > 0:
         return None
@@ -214,7 +214,7 @@ def parse_quantity(text: str) -> Quantity:
         elif of_tolerance.dimension == (measure or ONE).dimension and (measure or not of_tolerance.symbols):
             tolerance *= of_tolerance.factor
         else:
-            told = f"in '{of_tolerance.text}', the value in '{measure.text if measure else 'no unit'}'"
+            told = f"in “{of_tolerance.text}”, the value in '{measure.text if measure else 'no unit'}'"
             raise UnitTextError(f"the tolerance is {told}", "give both in units of the same kind")
         if tolerance <= 0:
             raise UnitTextError("the tolerance is not positive", "write one standard deviation after +/-")
@@ -225,9 +225,9 @@ def parse_quantity(text: str) -> Quantity:
 
 def _number_and_unit(text: str) -> tuple[float, Measure | None]:
     if "," in text:
-        raise UnitTextError(f"a ',' stands in '{text.strip()[:40]}'", "a decimal number has a point: 1.5 m")
+        raise UnitTextError(f"a ',' stands in “{text.strip()[:40]}”", "a decimal number has a point: 1.5 m")
     match = _VALUE.fullmatch(text)
     if match is None:
         hint = 'write "9.81 m/s^2" or "0.80 m +/- 0.01 m"'
-        raise UnitTextError(f"'{text.strip()[:40]}' is no number with a unit", hint)
+        raise UnitTextError(f"“{text.strip()[:40]}” is no number with a unit", hint)
     return float(match["value"]), parse_unit(match["unit"]) if match["unit"] else None

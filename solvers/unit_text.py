@@ -72,7 +72,7 @@ class _Reader:
             match = _TOKEN.match(text, place)
             if match is None:
                 strange = text[place:].lstrip()[0]
-                raise UnitTextError(f"'{strange}' cannot stand in a unit", "write units as in m/s^2 or kg*m/s^2")
+                raise UnitTextError(f"“{strange}” cannot stand in a unit", "write units as in m/s^2 or kg*m/s^2")
             tokens.append(_SAME.get(match[match.lastgroup or 0], match[match.lastgroup or 0]))
             place = match.end()
         return tokens
@@ -90,10 +90,10 @@ class _Reader:
         """whole = product end"""
         symbols = self.product()
         if self.next == ")":
-            raise UnitTextError(f"a ')' closes nothing in '{self.text}'", "remove it")
+            raise UnitTextError(f"a ')' closes nothing in “{self.text}”", "remove it")
         if self.next:
             hint = "write units as in kg*m/s^2, with one power on each"
-            raise UnitTextError(f"'{self.next}' follows without a sign in '{self.text}'", hint)
+            raise UnitTextError(f"“{self.next}” follows without a sign in “{self.text}”", hint)
         return merged(symbols)
 
     def product(self) -> Symbols:
@@ -114,7 +114,7 @@ class _Reader:
         minus = self.next == "-" and bool(self.take())
         digits = self.take()
         if not digits.isdigit() or (bracket and self.take() != ")"):
-            raise UnitTextError(f"an exponent in '{self.text}' is no whole number", "write powers as in m^2 or s^-1")
+            raise UnitTextError(f"an exponent in “{self.text}” is no whole number", "write powers as in m^2 or s^-1")
         if len(digits) > 2 or int(digits) > LARGEST_EXPONENT:
             limit = f"the exponent {digits[:9]} is too large; the limit is {LARGEST_EXPONENT}"
             raise UnitTextError(limit, "write powers as in m^2 or s^-1")
@@ -126,7 +126,7 @@ class _Reader:
         if token == "(":
             symbols = self.product()
             if self.take() != ")":
-                raise UnitTextError(f"a '(' is never closed in '{self.text}'", "add the missing ')'")
+                raise UnitTextError(f"a '(' is never closed in “{self.text}”", "add the missing ')'")
             return symbols
         if token == "1":
             return ()
@@ -134,6 +134,6 @@ class _Reader:
             hint = "a unit has names only, as in m/s^2 or 1/s"
             raise UnitTextError(f"the number {token} cannot stand in a unit", hint)
         if not token or token in "*/^)-":
-            where = f"'{token}'" if token else "the end"
-            raise UnitTextError(f"a unit is missing before {where} in '{self.text}'", "write units as in m/s^2 or 1/s")
+            where = f"“{token}”" if token else "the end"
+            raise UnitTextError(f"a unit is missing before {where} in “{self.text}”", "write units as in m/s^2 or 1/s")
         return ((token, Fraction(1)),)

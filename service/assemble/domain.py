@@ -45,11 +45,11 @@ def _parts(formula: Formula, node: Node, constants: Values) -> Iterator[Complain
     if isinstance(node, Product):
         for factor, over in zip(node.factors, node.over, strict=True):
             if over and _zero(factor, constants):
-                message = f"Division by zero: '{text(factor)}' is 0."
+                message = f"Division by zero: “{text(factor)}” is 0."
                 yield formula.complaint(factor.span, "undefined", message, "Divide by something else.")
                 return
     if isinstance(node, Power) and _zero(node.base, constants) and _negative(node.exponent, constants):
-        message = f"'{text(node)}' is a division by zero."
+        message = f"“{text(node)}” is a division by zero."
         yield formula.complaint(node.span, "undefined", message, "Use a positive exponent.")
         return
     if isinstance(node, Number | Name | At) or (isinstance(node, Call) and node.function == "integral"):
@@ -58,7 +58,7 @@ def _parts(formula: Formula, node: Node, constants: Values) -> Iterator[Complain
         value_of(node, constants)
     except (ArithmeticError, ValueError) as error:
         reason = "too large" if isinstance(error, OverflowError) else "no real number is its value"
-        message = f"'{text(node)[:60]}' is not defined: {reason}."
+        message = f"“{text(node)[:60]}” is not defined: {reason}."
         yield formula.complaint(node.span, "undefined", message, "Change the numbers or constants in it.")
     except LookupError:
         return  # depends on the curve: nothing to say before solving

@@ -28,11 +28,11 @@ def check_guess_names(document: Document, names: Names) -> None:
         known = (*names.of(Kind.UNKNOWN), *names.of(Kind.PARAMETER))
         if kind not in (Kind.UNKNOWN, Kind.PARAMETER):
             near = closest(name, known)
-            what = f"'{name[:40]}' is {kind.value}" if kind else f"There is no '{name[:40]}'"
-            hint = f"Did you mean '{near}'?" if near else "Guesses are for unknowns and parameters."
+            what = f"“{name[:40]}” is {kind.value}" if kind else f"There is no “{name[:40]}”"
+            hint = f"Did you mean “{near}”?" if near else "Guesses are for unknowns and parameters."
             complaints.append(Complaint(place, None, "unknown-name", f"{what}; nothing to guess.", hint))
         elif kind is Kind.PARAMETER and not isinstance(guess, float):
-            message = f"The guess for the parameter '{name}' is no number."
+            message = f"The guess for the parameter “{name}” is no number."
             complaints.append(Complaint(place, None, "wrong-guess", message, "Write a number in its unit."))
         elif isinstance(guess, tuple):
             places = [at for at, _ in guess]
@@ -71,7 +71,7 @@ def _formula(name: str, formulas: Formulas, declared: Declared, units: Units) ->
     own = units.sorts[name]
     plain = not sort.measure.symbols
     if own.checked and sort.checked and not plain and sort.measure.dimension != own.measure.dimension:
-        message = f"The guess is in {sort.told}, '{name}' in {own.told}."
+        message = f"The guess is {sort.told}, {name} is {own.told}."
         hint = f"Write a formula in {own.measure.text}, or a pure number: it is taken in {own.measure.text}."
         units.complaints.append(guess.complaint(guess.tree.span, "unit-clash", message, hint))
     if factor == 1 or not plain or (sort.measure.dimension != PURE):

@@ -100,7 +100,7 @@ class _Checker:
                 yield from self.at(node)
             case Call(function=function) if function not in FUNCTIONS and function != "integral":
                 hint = self.names.suggestion(function)
-                yield self.complaint(node.span, "unknown-function", f"There is no function '{function}'", hint)
+                yield self.complaint(node.span, "unknown-function", f"There is no function “{function}”", hint)
             case _:
                 for part in children(node):
                     yield from self.node(part)
@@ -121,11 +121,11 @@ class _Checker:
         if kind is None:
             word = "function or unknown" if not node.order else "unknown"
             hint = self.names.suggestion(node.name)
-            yield self.complaint(node.span, "unknown-name", f"There is no {word} '{node.name}'", hint)
+            yield self.complaint(node.span, "unknown-name", f"There is no {word} “{node.name}”", hint)
             return
         if kind not in (Kind.UNKNOWN, Kind.ABBREVIATION):
             hint = f"write {node.name}, or {node.name}*(…) for a product"
-            message = f"'{node.name}' is {kind.value} and has no value at a place"
+            message = f"“{node.name}” is {kind.value} and has no value at a place"
             yield self.complaint(node.span, "no-place", message, hint)
         elif node.order and kind is Kind.ABBREVIATION:
             yield self.no_derivative(node.span, node.name, kind)
@@ -147,18 +147,18 @@ class _Checker:
             elif kind is Kind.INDEPENDENT:
                 shown = node.name + "'" * node.order
                 hint = f"write {shown} alone for its value everywhere, or name a place as in {shown}(0)"
-                yield self.complaint(node.span, "bad-place", f"'{part.name}' is no place: it runs", hint)
+                yield self.complaint(node.span, "bad-place", f"“{part.name}” is no place: it runs", hint)
             elif kind in (Kind.UNKNOWN, Kind.ABBREVIATION) or isinstance(part, At):
                 hint = "a place is a number, a formula of constants, or a parameter"
                 yield self.complaint(part.span, "bad-place", "A place cannot depend on the curve", hint)
                 return
 
     def unknown(self, span: Span, name: str) -> Complaint:
-        return self.complaint(span, "unknown-name", f"There is no '{name}'", self.names.suggestion(name))
+        return self.complaint(span, "unknown-name", f"There is no “{name}”", self.names.suggestion(name))
 
     def no_derivative(self, span: Span, name: str, kind: Kind) -> Complaint:
         hint = "write out its derivative" if kind is Kind.ABBREVIATION else "primes stand on unknowns only"
-        return self.complaint(span, "no-derivative", f"'{name}' is {kind.value} and has no derivative here", hint)
+        return self.complaint(span, "no-derivative", f"“{name}” is {kind.value} and has no derivative here", hint)
 
     def too_high(self, span: Span, order: int) -> Complaint:
         message = f"A derivative of order {order}; at most {HIGHEST_ORDER} are solved"
@@ -200,7 +200,7 @@ def _order(formulas: Formulas, names: Names) -> tuple[str, ...]:
         round_trip = " -> ".join(reversed(circle))
         message = f"The abbreviations use each other in a circle: {round_trip}."
         if len(circle) == 2:
-            message = f"The abbreviation '{first}' uses itself."
+            message = f"The abbreviation “{first}” uses itself."
         complaint = formula.complaint(formula.tree.span, "circle", message, "Take one of them out of the circle.")
         refuse(Stage.NAMES, [complaint])
         raise AssertionError from error
@@ -264,7 +264,7 @@ def _running(formula: Formula, meaning: Meaning) -> Iterator[Complaint]:
         if isinstance(node, Name) and traits.moving:
             shown = node.name + "'" * node.order
             independent = node.name == meaning.names.independent
-            message = f"'{shown}' needs a place here: this holds at places, not all along."
+            message = f"“{shown}” needs a place here: this holds at places, not all along."
             hint = "Write the place itself." if independent else f"Write {shown}(0), for instance, or use constraints."
             yield formula.complaint(node.span, "misplaced", message, hint)
         elif traits.integral:
@@ -291,7 +291,7 @@ def _placed_twice(formula: Formula, meaning: Meaning) -> Iterator[Complaint]:
     for node in (node for part in _top(formula) for node in walk(part)):
         traits = meaning.traits.get(node.name) if isinstance(node, At) else None
         if isinstance(node, At) and traits is not None and not traits.moving:
-            message = f"The abbreviation '{node.name}' does not run along the curve: it has no value at a place."
+            message = f"The abbreviation “{node.name}” does not run along the curve: it has no value at a place."
             yield formula.complaint(node.span, "no-place", message, f"Write {node.name} alone.")
 
 

@@ -50,7 +50,7 @@ class Names:
         if name in HABITS:
             return f"here it is written {HABITS[name]}"
         near = closest(name, (*self.kinds, *sorted(RESERVED)))
-        return f"did you mean '{near}'?" if near else "declare it under constants, parameters, unknowns or where"
+        return f"did you mean “{near}”?" if near else "declare it under constants, parameters, unknowns or where"
 
 
 def declare(document: Document) -> Names:
@@ -64,17 +64,17 @@ def declare(document: Document) -> Names:
             spelling = read_name(name)
         except FormulaError as error:
             hint = sentence(error.hint or "a name is a letter, then letters, digits and '_'")
-            complaints.append(Complaint(place, None, "bad-name", f"'{name[:40]}' is no name: {error.message}.", hint))
+            complaints.append(Complaint(place, None, "bad-name", f"“{name[:40]}” is no name: {error.message}.", hint))
             continue
         if len(spelling) > 40:
             message = f"The name '{spelling[:20]}…' has {len(spelling)} characters."
             complaints.append(Complaint(place, None, "bad-name", message, "Names have at most 40 characters."))
         elif spelling in RESERVED:
-            message = f"'{spelling}' is built in and cannot be {kind.value}."
+            message = f"“{spelling}” is built in and cannot be {kind.value}."
             hint = f"Call it '{spelling}_1', for instance."
             complaints.append(Complaint(place, None, "reserved-name", message, hint))
         elif spelling in kinds:
-            message = f"'{spelling}' is {kind.value} here and {kinds[spelling].value} at {places[spelling]}."
+            message = f"“{spelling}” is {kind.value} here and {kinds[spelling].value} at {places[spelling]}."
             complaints.append(Complaint(place, None, "name-clash", message, "Give one of the two another name."))
         else:
             kinds[spelling], written[name], places[spelling] = kind, spelling, place

@@ -75,7 +75,7 @@ def find_places(formulas: Formulas, units: Units, parameters: dict[str, Paramete
         try:
             spot = spot_of(node.place, label, units, parameters)
         except (ArithmeticError, ValueError, LookupError):
-            message = f"The place '{label}' has no fixed value."
+            message = f"The place “{label}” has no fixed value."
             hint = "A place is a number, a formula of constants, or one parameter."
             complaints.append(formula.complaint(node.place.span, "bad-place", message, hint))
             continue

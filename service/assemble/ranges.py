@@ -20,8 +20,7 @@ SLACK = 1e-9
 
 
 def excluded_values(problem: Problem, values: FixedValues) -> Iterator[Complaint]:
-    """Bounds that leave out a fixed value, limits that leave nothing, conditions that fail at a fixed end."""
-    yield from _empty_ranges(problem, values.constants)
+    """Bounds that leave out a fixed value, and conditions that fail at fixed values."""
     for unknown in problem.unknowns:
         for index, place in enumerate(problem.places):
             variable = (unknown.name, 0, index)
@@ -120,11 +119,11 @@ def _limit(condition: Condition, index: int | None, evaluation: _Evaluation) -> 
         return
     place = "" if index is None else f" at {evaluation.problem.places[index].label}"
     by = values.told_by(set(used))
-    message = f"'{condition.label}' cannot hold{place} with {listing(by)}."
+    message = f"“{condition.label}” cannot hold{place} with {listing(by)}."
     yield Complaint(condition.pointer, None, "excluded", message, "Change the condition, or the values at the places.")
 
 
-def _empty_ranges(problem: Problem, constants: Mapping[str, float]) -> Iterator[Complaint]:
+def empty_ranges(problem: Problem, constants: Mapping[str, float]) -> Iterator[Complaint]:
     """Limits on one and the same linear form that leave no value, or only one."""
     unknowns = {unknown.name for unknown in problem.unknowns}
     parameters = {parameter.name for parameter in problem.parameters}
@@ -142,14 +141,14 @@ def _empty_ranges(problem: Problem, constants: Mapping[str, float]) -> Iterator[
             return node.name if node.name in parameters else (node.name, node.order) if node.name in unknowns else None
         return None
 
-    for condition in (*problem.constraints, *problem.endpoints):
+    for condition in (*problem.constraints, *(one for one in problem.endpoints if not one.equality)):
         try:
             lower = -math.inf if condition.lower is None else value_of(condition.lower, constants)
             upper = math.inf if condition.upper is None else value_of(condition.upper, constants)
         except (ArithmeticError, ValueError, LookupError):
             continue
         if not condition.equality and condition.lower is not None and condition.upper is not None and lower >= upper:
-            message = f"The limits in '{condition.label}' leave {'one value only' if lower == upper else 'no value'}."
+            message = f"The limits in “{condition.label}” leave {'one value only' if lower == upper else 'no value'}."
             hint = "Write an equality with =." if lower == upper else "Swap the limits."
             yield Complaint(condition.pointer, None, "empty-range", message, hint)
             continue
@@ -162,8 +161,8 @@ def _empty_ranges(problem: Problem, constants: Mapping[str, float]) -> Iterator[
         low, high = sorted(((lower - form.constant) / scale, (upper - form.constant) / scale))
         before = ranges.get(key)
         if before is not None and not (_inside(max(low, before[0]), -math.inf, min(high, before[1]))):
-            message = f"'{condition.label}' leaves no value within {before[2]}."
+            message = f"“{condition.label}” leaves no value within {before[2]}."
             yield Complaint(condition.pointer, None, "empty-range", message, "Change one of the limits.")
             continue
         both = (low, high) if before is None else (max(low, before[0]), min(high, before[1]))
-        ranges[key] = (*both, f"'{condition.label}'" if before is None else f"{before[2]} and '{condition.label}'")
+        ranges[key] = (*both, f"“{condition.label}”" if before is None else f"{before[2]} and “{condition.label}”")

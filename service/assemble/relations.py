@@ -53,12 +53,13 @@ def scaled(node: Node, lead: Sort, formula: Formula, units: Units) -> Node:
     if measure.factor == 1:
         return node
     if measure.ambiguous:
-        message = f"The number '{text(node)}' would be in '{measure.text}', the unit of the other side: hardly meant."
-        hint = f'Give it a unit: a constant such as "c": "{text(node)[:20]} {measure.coherent.text}".'
+        message = f"The number “{text(node)}” would be in {measure.text}, the unit of the other side: hardly meant."
+        unit = measure.text if measure.dimension == PURE else measure.coherent.text
+        hint = f'Give it a unit: a constant such as "c": "{text(node)[:20]} {unit}".'
         units.complaints.append(formula.complaint(node.span, "bare-number", message, hint))
         return node
     if measure.dimension == PURE and any(isinstance(part, Name) and part.name == "pi" for part in walk(node)):
-        message = f"'{text(node)}' would be in '{measure.text}', the unit of the other side: with pi hardly meant."
+        message = f"“{text(node)}” would be in {measure.text}, the unit of the other side: with pi hardly meant."
         hint = f"Write it in {measure.text}, or give a constant in rad."
         units.complaints.append(formula.complaint(node.span, "bare-number", message, hint))
         return node
@@ -79,7 +80,7 @@ def says_nothing(statement: Statement, meaning: Meaning) -> Iterator[Complaint]:
     """Given numbers side by side: true or false whatever the curve is."""
     for left, right in pairwise(statement.tree.sides):
         if meaning.of(left, right).fixed:
-            message = f"'{text(left)}' and '{text(right)}' are both given numbers: this says nothing about the curve."
+            message = f"“{text(left)}” and “{text(right)}” are both given numbers: this says nothing about the curve."
             span = Span(left.span.start, right.span.end)
             yield statement.complaint(span, "says-nothing", message, "Leave it out, or compare with an unknown.")
 

@@ -63,7 +63,8 @@ def _unreadable(text: str, error: str) -> Refused:
         where = f"line {line}, column {column}"
         message = f"JSON has no NaN and no infinity ({where})."
         return _refused("not-a-number", message, "Use null for an open bound.", span)
-    message = f"This is not JSON: {found['what']} at line {line}, column {column}."
+    what = found["what"].replace("EOF while parsing", "the text ends inside")
+    message = f"This is not JSON: {what} at line {line}, column {column}."
     return _refused("not-json", message, "Check commas, quotes and brackets just before this place.", span)
 
 

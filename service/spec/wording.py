@@ -18,13 +18,20 @@ _KINDS = {
 }  # fmt: skip
 """What was expected, by pydantic's type of error."""
 
+_LIMITS = {"ge": "at least", "gt": "more than", "le": "at most", "lt": "less than"}
+
 
 def complaints_of(error: ValidationError, source: Any) -> list[Complaint]:
     """One complaint per place, in the order of the document."""
     places: dict[str, list[ErrorDetails]] = {}
     for detail in error.errors(include_url=False, include_context=True):
         places.setdefault(_place(detail, source), []).append(detail)
-    return [_complaint(place, details, source) for place, details in places.items()]
+    return [
+        _complaint(place, details)
+        for place, details in places.items()
+        # What is wrong inside a list is told there; that the list then has too few good items is no news.
+        if not (details[0]["type"] == "too_short" and any(other.startswith(place + "/") for other in places))
+    ]
 
 
 def _place(detail: ErrorDetails, source: Any) -> str:
@@ -44,7 +51,7 @@ def _place(detail: ErrorDetails, source: Any) -> str:
     return pointer(*steps)
 
 
-def _complaint(place: str, details: list[ErrorDetails], source: Any) -> Complaint:
+def _complaint(place: str, details: list[ErrorDetails]) -> Complaint:
     wanted = list(dict.fromkeys(_KINDS[detail["type"]] for detail in details if detail["type"] in _KINDS))
     others = [detail for detail in details if detail["type"] not in _KINDS]
     if not others:
@@ -75,22 +82,26 @@ def _complaint(place: str, details: list[ErrorDetails], source: Any) -> Complain
             )
             return Complaint(place, None, "no-functional", "Nothing is sought: there is no functional.", hint)
         case "too_long" | "too_short":
-            return _count(place, context, others)
+            return _count(place, context)
         case "string_too_long" | "string_too_short":
             limit = context.get("max_length", context.get("min_length"))
             long = detail["type"] == "string_too_long"
             message = f"This text is longer than {limit:,} characters." if long else "This text is empty."
-            hint = "Shorten it; name parts of a formula in `where`." if long else "Write something, or leave it out."
+            hint = "Shorten it; parts of a formula can have names in `where`." if long else "Write it, or leave it out."
             return Complaint(place, None, "text-too-long" if long else "empty-text", message, hint)
         case _:
-            message = f"{_shown(detail['input'])} is out of range: {_plain(detail['msg'])}."
-            return Complaint(place, None, "out-of-range", message, f"{_plain(detail['msg'])}.")
+            limits = [f"{word} {context[key]:,g}" for key, word in _LIMITS.items() if key in context]
+            message = f"{_shown(detail['input'])} is out of range; {listing(limits) or 'a finite number'} is allowed."
+            return Complaint(place, None, "out-of-range", message, f"Write {listing(limits) or 'a finite number'}.")
 
 
-def _count(place: str, context: dict[str, Any], details: list[ErrorDetails]) -> Complaint:
+def _count(place: str, context: dict[str, Any]) -> Complaint:
     """A list or a table of names with too many or too few entries."""
     most, least = context.get("max_length"), context.get("min_length")
-    if most == 2 or least == 2:
+    if least == 2 and most != 2:
+        hint = "Give two points at least, as in [[0, 1], [3, 2]]."
+        return Complaint(place, None, "wrong-length", "One point makes no curve.", hint)
+    if most == 2:
         hint = "Write two items, as in [0, 2]."
         return Complaint(place, None, "wrong-length", "This list has the wrong number of items.", hint)
     if most is not None:
@@ -107,10 +118,6 @@ def _members(location: tuple[str | int, ...]) -> tuple[str, ...]:
     }  # fmt: skip
     part = parts[str(location[0])] if location else Document
     return tuple(field.alias or name for name, field in part.model_fields.items())
-
-
-def _plain(message: str) -> str:
-    return message.replace("Input should be", "It should be").rstrip(".")
 
 
 def _shown(value: Any) -> str:
