@@ -4,7 +4,7 @@ import re
 import shutil
 import subprocess
 import sys
-import threading
+import time
 from urllib.parse import urlsplit
 
 import pytest
@@ -29,31 +29,41 @@ def pytest_collection_modifyitems(items):
 @pytest.fixture(scope="session")
 def server(tmp_path_factory):
     """The address of a server with an empty database and one worker."""
-    data = tmp_path_factory.mktemp("data")
-    process = subprocess.Popen(
-        [sys.executable, "-m", "service", "serve", "--port", "0", "--data", str(data), "--workers", "1"],
-        stdout=subprocess.PIPE, stderr=subprocess.STDOUT, text=True,
-    )  # fmt: skip
-    too_long = threading.Timer(START_SECONDS, process.kill)
-    too_long.start()
-    said = []
-    address = None
-    for line in process.stdout:
-        said.append(line)
-        if found := re.search(r"http://127\.0\.0\.1:\d+", line):
-            address = found[0]
-            break
-    too_long.cancel()
-    assert address, "the server did not start:\n" + "".join(said)
-    # What it says later must not fill the pipe and stop it.
-    threading.Thread(target=process.stdout.read, daemon=True).start()
-    yield address
-    process.terminate()
+    folder = tmp_path_factory.mktemp("server")
+    command = [
+        sys.executable,
+        "-m",
+        "service",
+        "serve",
+        "--port",
+        "0",
+        "--data",
+        str(folder / "data"),
+        "--workers",
+        "1",
+    ]
+    with (folder / "said").open("w") as said:
+        process = subprocess.Popen(command, stdout=said, stderr=subprocess.STDOUT)
     try:
-        process.wait(timeout=15)
-    except subprocess.TimeoutExpired:
-        process.kill()
-        raise AssertionError("the server did not end when it was asked to") from None
+        yield _address(process, folder / "said")
+    finally:
+        process.terminate()
+        try:
+            process.wait(timeout=15)
+        except subprocess.TimeoutExpired:
+            process.kill()
+            process.wait()
+            raise AssertionError("the server did not end when it was asked to") from None
+
+
+def _address(process, said):
+    """Where the server listens, as soon as it says so."""
+    until = time.monotonic() + START_SECONDS
+    while process.poll() is None and time.monotonic() < until:
+        if found := re.search(r"http://127\.0\.0\.1:\d+", said.read_text()):
+            return found[0]
+        time.sleep(0.05)
+    raise AssertionError(f"the server did not start:\n{said.read_text()}")
 
 
 @pytest.fixture(scope="session")
