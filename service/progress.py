@@ -18,8 +18,9 @@ from dataclasses import dataclass, field
 from typing import Any
 
 _INTERVAL = 1 / 15  # seconds between two iterations that are shown
-_KEPT_EVENTS = 512  # per run
-_KEPT_RUNS = 500  # beyond those that somebody follows, the longest untouched are forgotten
+_KEPT_EVENTS = 512  # of a run in the middle
+_KEPT_AFTER_END = 32  # once nobody follows it any more
+_KEPT_RUNS = 300  # beyond those that somebody follows, the longest untouched are forgotten
 _QUIET_SECONDS = 2.0
 
 
@@ -55,6 +56,12 @@ class _Channel:
             data, self.pending = self.pending, None
             self.keep(data)
 
+    def trim(self) -> None:
+        """Give back what hardly anybody will ask for."""
+        if self.over and not self.bells:
+            while len(self.events) > _KEPT_AFTER_END:
+                self.events.popleft()
+
     def since(self, number: int) -> list[tuple[int, dict[str, Any]]]:
         return [event for event in self.events if event[0] > number]
 
@@ -82,6 +89,7 @@ class Progress:
                 ring = True
                 channel.flush()
                 channel.keep(data)
+                channel.trim()
             bells = tuple(channel.bells) if ring else ()
         for bell in bells:
             bell()
@@ -148,3 +156,4 @@ class Progress:
         finally:
             with self._lock:
                 channel.bells.discard(bell)
+                channel.trim()

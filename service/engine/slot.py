@@ -87,7 +87,11 @@ class Slot:
             except (ChildGoneError, OSError) as gone:
                 why = self._bury() if self._process is not None else str(gone)
                 continue
-            outcome = self._attend(process, job, report)
+            try:
+                outcome = self._attend(process, job, report)
+            except BaseException:
+                self._end()  # its child is in the middle of a job that nobody attends to
+                raise
             if outcome.ending is not Ending.UNSTARTED:
                 return outcome
             why = outcome.reason

@@ -163,6 +163,15 @@ def test_a_busy_child_ends_when_the_socket_closes(make_job):
     process._output.close()
 
 
+def test_an_error_of_the_listener_does_not_leave_the_job_running(slot, make_job):
+    def fail(event):
+        raise ZeroDivisionError
+
+    with pytest.raises(ZeroDivisionError):
+        slot.run(make_job("sleep", seconds=60), fail)
+    assert slot.run(make_job(say="next"), ignore).body == b'{"id": "a", "answer": "next"}'
+
+
 def test_a_fat_child_is_replaced_when_there_is_time(make_slot, make_job, monkeypatch):
     slot = make_slot()
     first = slot.run(make_job(say="who"), ignore).head["pid"]

@@ -122,6 +122,8 @@ def test_memory_is_bounded(hub, monkeypatch):
     for number in range(2000):
         hub.publish("long", {"kind": "mesh", "mesh": number})
     assert len(hub._channels["long"].events) == 512
+    hub.publish("long", END)
+    assert len(hub._channels["long"].events) == 32
 
 
 def test_a_follower_that_leaves_is_forgotten(hub):
