@@ -259,7 +259,13 @@ CASES = (
         figures=(at("A", 0.5, 1.5, 1e-2),),
     ),
     Case(
-        "A56", MIN, 4 / 3, 1e-4,
+        "A56a", MIN, 4 / 3, 1e-4,
+        "closed form: t = 1 - x/L, y = (L - x)^2/2, L = 2; Duffin (1959), A variational problem relating to "
+        "cooling fins, J. Math. Mech. 8 (from memory)",
+        ("singular endpoint", "free end"), figures=(at("y", 0, 2.0, 1e-2),),
+    ),
+    Case(
+        "A56b", MIN, 4 / 3, 1e-4,
         "closed form: t = 1 - x/L, y = (L - x)^2/2, L = 2; Duffin (1959), A variational problem relating to "
         "cooling fins, J. Math. Mech. 8 (from memory)",
         ("singular endpoint", "free end"), figures=(at("y", 0, 2.0, 1e-2),),
