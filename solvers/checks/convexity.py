@@ -1,0 +1,105 @@
+"""Is the problem convex, so that a stationary curve is the best of all?
+
+That needs: fixed ends, dynamics affine in unknowns, derivatives and parameters together, functional and inequalities
+convex in them jointly, equalities affine.  Only what rules of composition prove counts (`composition`); where they do
+not reach, nothing is said.
+
+Reference: Troutman (1996), Variational Calculus and Optimal Control, chapter 3 (from memory).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+from solvers.checks.composition import INF, Bend, Leaf, Shape, Unfold, shape_of
+from solvers.formula.evaluate import REAL, evaluate
+from solvers.formula.nodes import At, Name, Node
+from solvers.limits import interval_of
+from solvers.lowering import simple_bound
+from solvers.problem import Condition, Problem, Seek
+from solvers.solution import Check, Status
+
+NAME = "convexity"
+
+
+def check(problem: Problem) -> Check:
+    """Passed where convexity (for a maximum: concavity) is proved; never failed: not convex is no fault."""
+    reason = next(obstacles(problem), None)
+    word = "concave" if problem.seek is Seek.MAXIMUM else "convex"
+    if reason is None:
+        return Check(NAME, Status.PASSED, f"The problem is {word} in all unknowns and derivatives together: "
+                     "no other curve does better.")  # fmt: skip
+    return Check(NAME, Status.NOT_APPLICABLE, f"Not proved to be {word}: {reason}. Better curves elsewhere are "
+                 "not excluded.")  # fmt: skip
+
+
+def obstacles(problem: Problem) -> Iterator[str]:
+    """Why the problem is not (proved to be) convex."""
+    if problem.seek is Seek.STATIONARY:
+        yield "a stationary value is asked for"
+        return
+    constants = {c.name: c.value for c in problem.constants}
+    parameters = {p.name for p in problem.parameters}
+    if any(isinstance(place.tree, Name) and place.tree.name in parameters for place in problem.places):
+        yield "a place is free"
+        return
+    first, last = (float(evaluate(place.tree, lambda name, order: constants[name], REAL))
+                   for place in (problem.places[0], problem.places[-1]))  # fmt: skip
+    if not first < last:
+        yield f"{problem.independent} runs backwards"
+        return
+    leaf, unfold = _known(problem, constants, first, last), _unfolding(problem)
+
+    def shape(tree: Node) -> Shape:
+        return shape_of(tree, leaf, unfold)
+
+    for equation in problem.dynamics:
+        if not (shape(equation.left).affine and shape(equation.right).affine):
+            yield f"'{equation.label}' is not linear"
+    for tree, what in ((problem.integrand, "the integrand"), (problem.endpoint, "the endpoint term")):
+        if tree is None:
+            continue
+        found = shape(tree)
+        if not (found.concave if problem.seek is Seek.MAXIMUM else found.convex):
+            yield f"{what} is not, as far as the rules of composition reach"
+    for condition in (*problem.endpoints, *problem.constraints, *problem.integrals):
+        found = shape(condition.body)
+        if not ((condition.upper is None or found.convex) and (condition.lower is None or found.concave)):
+            yield f"'{condition.label}' does not bound a convex set, as far as the rules of composition reach"
+
+
+def _known(problem: Problem, constants: dict[str, float], first: float, last: float) -> Leaf:
+    """What is known of each name: whether it is given, and where its values lie."""
+    ranges: dict[tuple[str, int], tuple[float, float]] = {(u.name, 0): (u.lower, u.upper) for u in problem.unknowns}
+    for condition in problem.constraints:
+        target = simple_bound(condition)
+        if target is not None:
+            low, high = ranges.get(target, (-INF, INF))
+            ranges[target] = _narrowed(condition, constants, low, high)
+    numbers = {p.name: Shape(Bend.AFFINE, p.lower, p.upper) for p in problem.parameters}
+    numbers |= {name: Shape(Bend.GIVEN, value, value) for name, value in constants.items()}
+    numbers[problem.independent] = Shape(Bend.GIVEN, first, last)
+    numbers["pi"] = Shape(Bend.GIVEN, *[evaluate(Name("pi"), lambda name, order: 0.0, REAL)] * 2)
+
+    def leaf(node: Name | At) -> Shape:
+        if isinstance(node, Name) and node.name in numbers and node.order == 0:
+            return numbers[node.name]
+        return Shape(Bend.AFFINE, *ranges.get((node.name, node.order), (-INF, INF)))
+
+    return leaf
+
+
+def _narrowed(condition: Condition, constants: dict[str, float], low: float, high: float) -> tuple[float, float]:
+    least, most = interval_of(condition, constants)
+    return max(low, least), min(high, most)
+
+
+def _unfolding(problem: Problem) -> Unfold:
+    abbreviations = dict(problem.where)
+
+    def unfold(tree: Node) -> Node:
+        while isinstance(tree, Name) and tree.name in abbreviations:
+            tree = abbreviations[tree.name]
+        return tree
+
+    return unfold

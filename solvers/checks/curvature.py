@@ -1,0 +1,220 @@
+"""Is the second variation positive, and if not, from where on (the first conjugate point)?
+
+The Hessian of the Lagrangian must be positive on all variations that keep dynamics and active limits.  Constraints that
+couple neighbours only enter as a penalty, (J dz)^2 / e, which keeps the matrix banded in the order of the curve; the
+few that couple everything (integrals, conditions) and the free numbers stand in a border.  The triangular factors
+L D L' of that matrix count its negative directions (Sylvester), and since its leading parts belong to variations that
+vanish from some place on, the first part that has one ends at the first conjugate point (Jacobi).
+
+Both answers are safe.  A pass holds for any e, since the penalty vanishes on the variations in question.  A negative
+direction is put back onto the constraints and its second variation computed before the curve is condemned.  A margin
+decides between both: the second variation is compared with the mean square of the variation itself, relative to the
+functional; in between nothing is said (a closed curve may be turned, an eigenvector may be scaled).
+
+References: Gelfand, Fomin (1963), Calculus of Variations, chapter 5; Nocedal, Wright (2006), Numerical Optimization,
+section 16.2 (from memory).
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+import scipy.sparse as sp
+from numpy.typing import NDArray
+from scipy.sparse.linalg import splu
+
+from solvers.checks import legendre
+from solvers.checks.sampling import Sampler
+from solvers.solution import Check, Status
+
+Array = NDArray[np.float64]
+Flags = NDArray[np.bool_]
+Indices = NDArray[np.int64]
+
+NAME = "conjugate points"
+MARGIN = 1e-5
+PENALTY = 1e-7
+AT_BOUND = 1e-6
+"""How near to a limit, scaled, counts as resting on it."""
+PUSHED = 1e-6
+"""Multipliers, times the size of the variable and relative to its measure, that count as holding a limit."""
+LARGEST = 60_000
+
+
+@dataclass(frozen=True, slots=True)
+class Second:
+    """The second-order problem of a solved mesh: all scaled as the program is."""
+
+    hessian: sp.csc_matrix
+    jacobian: sp.csr_matrix
+    metric: Array  # the mean square of a variation is sum(metric * dz^2)
+    fixed: Flags
+    resting: Flags  # on a bound
+    pushed: Flags  # and held there by a multiplier
+    equalities: Flags
+    at_limit: Flags
+    forced: Flags
+    long: Flags  # rows that couple the whole curve
+    border: Flags  # variables that do
+
+
+@dataclass(frozen=True, slots=True)
+class Count:
+    """How many negative directions a quadratic form has on the kernel of constraints; `first` is one of them."""
+
+    negative: int
+    first: Array | None
+
+
+def check(sampler: Sampler) -> Check:
+    """Passed where the second variation is positive, failed where a direction is proved negative."""
+    program = sampler.path.program
+    if program.layout.size > LARGEST:
+        return Check(NAME, Status.NOT_APPLICABLE, f"The mesh has more than {LARGEST} unknowns; this was not tried.")
+    second = second_order(sampler)
+    strict = ~(second.fixed | second.pushed)
+    rows = second.equalities | second.forced
+    positive = count_negative(second, strict, rows, -MARGIN)
+    if positive is not None and positive.negative == 0:
+        return Check(NAME, Status.PASSED, _sentence(sampler, second, strict))
+    free = ~(second.fixed | second.resting)
+    rows = second.equalities | second.at_limit
+    negative = count_negative(second, free, rows, MARGIN)
+    if negative is None:
+        return Check(NAME, Status.NOT_APPLICABLE, "The second variation could not be decided: its matrix is singular.")
+    if negative.negative > 0 and negative.first is not None:
+        share = proved(second, free, rows, negative.first)
+        if share < -MARGIN:
+            place = _conjugate(sampler, second, free, rows)
+            return Check(NAME, Status.FAILED, "A variation that keeps all conditions lowers the functional in second "
+                         f"order by {-share:.1e} of its size; the first such vanishes beyond the place given.",
+                         -share, MARGIN, place)  # fmt: skip
+    return Check(NAME, Status.NOT_APPLICABLE, "Not decided: the second variation vanishes in some direction (within "
+                 f"{MARGIN:.0e} of the functional), as along families of equally good curves.")  # fmt: skip
+
+
+def _sentence(sampler: Sampler, second: Second, free: Flags) -> str:
+    controls = sampler.path.program.layout.controls
+    if controls.size and not free[controls].all():
+        held = legendre.held_controls(sampler) if sampler.point.controls else np.zeros((0, 0), bool)
+        share = float(sampler.mean(held.all(axis=1).astype(float)))
+        if share > 0.9:
+            return ("Bang-bang: the controls are pushed against their bounds strictly, but for the switches, and no "
+                    "change of the switches that keeps the conditions lowers the functional.")  # fmt: skip
+    return "The second variation is positive on all variations that keep the conditions: no conjugate point."
+
+
+def second_order(sampler: Sampler) -> Second:
+    """Hessian, Jacobian and what is active at the solution."""
+    path, program = sampler.path, sampler.path.program
+    where, rows, functions = program.layout, program.rows, program.functions
+    z, constants = path.z / program.scale, list(program.compiled.constants)
+    size = abs(program.value_scale)
+    multipliers = path.row_multipliers * program.row_scale / size
+    bounds = path.bound_multipliers * program.scale / size
+    upper = _matrix(functions["hess_lag"](z, constants, 1.0, multipliers))
+    hessian = (upper + sp.triu(upper, 1).T).tocsc()
+    g, jacobian = functions["jac_g"](z, constants)
+    values = np.asarray(g).ravel()
+    metric = np.zeros(where.size)
+    weight = where.measures * np.abs((path.places[where.stretch + 1] - path.places[where.stretch]) / sampler.span)
+    share = sampler.value_size / size
+    target = where.inner if sampler.point.states else where.controls
+    metric[target] = share * weight[:, None]
+    metric[where.nodes[0]] = share * weight[0]
+    metric[where.parameters] = share
+    fixed = program.lower == program.upper
+    resting = ~fixed & ((z - program.lower <= AT_BOUND) | (program.upper - z <= AT_BOUND))
+    measure = np.ones(where.size)
+    measure[where.inner] = measure[where.controls] = weight[:, None]
+    pushed = resting & (np.abs(bounds) > PUSHED * share * measure)
+    equalities = program.row_lower == program.row_upper
+    at_limit = ~equalities & ((values - program.row_lower <= AT_BOUND) | (program.row_upper - values <= AT_BOUND))
+    row_measure = np.ones(rows.count)
+    if sampler.point.constraints:
+        row_measure[rows.pointwise : rows.integrals] = np.repeat(weight, sampler.point.constraints)
+    forced = at_limit & (np.abs(multipliers) > PUSHED * share * row_measure)
+    long = np.zeros(rows.count, bool)
+    long[rows.integrals :] = True
+    border = np.zeros(where.size, bool)
+    border[where.places] = border[where.parameters] = border[where.integrals] = True
+    return Second(hessian, _matrix(jacobian).tocsr(), metric, fixed, resting, pushed, equalities, at_limit, forced,
+                  long, border)  # fmt: skip
+
+
+def _matrix(value: object) -> sp.csc_matrix:
+    pattern = value.sparsity()  # type: ignore[attr-defined]
+    return sp.csc_matrix((np.array(value.nonzeros()), np.array(pattern.row()), np.array(pattern.colind())),  # type: ignore[attr-defined]
+                         shape=pattern.shape)  # fmt: skip
+
+
+def count_negative(second: Second, free: Flags, rows: Flags, shift: float) -> Count | None:
+    """Negative directions of hessian + shift * metric on the free variables where the rows keep their values.
+
+    None where the factors are not to be trusted.
+    """
+    inside = np.flatnonzero(free & ~second.border)
+    border = np.flatnonzero(free & second.border)
+    columns = np.concatenate([inside, border])
+    near, far = np.flatnonzero(rows & ~second.long), np.flatnonzero(rows & second.long)
+    if not len(columns):
+        return Count(0, None)
+    hessian = second.hessian[columns][:, columns] + sp.diags(shift * second.metric[columns])
+    local, coupling = _normal(second.jacobian[near][:, columns]), _normal(second.jacobian[far][:, columns])
+    matrix = sp.bmat([[hessian + local.T @ local / PENALTY, coupling.T],
+                      [coupling, -PENALTY * sp.eye(coupling.shape[0])]], format="csc")  # fmt: skip
+    try:
+        factors = splu(matrix, permc_spec="NATURAL", diag_pivot_thresh=0.0, options={"SymmetricMode": True})
+    except RuntimeError:  # exactly singular
+        return None
+    if not np.array_equal(factors.perm_r, np.arange(matrix.shape[0])):
+        return None
+    pivots = factors.U.diagonal()
+    probe = np.cos(np.arange(matrix.shape[0]))
+    if np.abs(matrix @ factors.solve(probe) - probe).max() > 1e-4:
+        return None
+    negative = int((pivots < 0).sum()) - coupling.shape[0]
+    if negative <= 0:
+        return Count(max(negative, 0), None)
+    return Count(negative, _direction(factors, matrix, len(columns)))
+
+
+def _normal(jacobian: sp.csr_matrix) -> sp.csr_matrix:
+    """Rows of length one; rows of zeros vanish."""
+    length = np.sqrt(np.asarray(jacobian.multiply(jacobian).sum(axis=1)).ravel())
+    kept = length > 1e-14
+    return (sp.diags(1 / length[kept]) @ jacobian[kept]).tocsr()
+
+
+def _direction(factors: object, matrix: sp.csc_matrix, count: int) -> Array:
+    """A vector near the lowest end of the spectrum, by inverse iteration."""
+    vector = np.sin(1.0 + np.arange(matrix.shape[0]))
+    for _ in range(6):
+        vector = factors.solve(vector)  # type: ignore[attr-defined]
+        vector /= np.linalg.norm(vector)
+    return np.asarray(vector[:count])
+
+
+def proved(second: Second, free: Flags, rows: Flags, direction: Array) -> float:
+    """The second variation of a direction put onto the constraints, relative to its mean square."""
+    columns = np.concatenate([np.flatnonzero(free & ~second.border), np.flatnonzero(free & second.border)])
+    jacobian = _normal(second.jacobian[np.flatnonzero(rows)][:, columns])
+    for _ in range(2):
+        direction = direction - sp.linalg.lsqr(jacobian, jacobian @ direction, atol=1e-14, btol=1e-14)[0]
+    bend = float(direction @ (second.hessian[columns][:, columns] @ direction))
+    size = float(second.metric[columns] @ direction**2)
+    return bend / size if size > 0 else 0.0
+
+
+def _conjugate(sampler: Sampler, second: Second, free: Flags, rows: Flags) -> float:
+    """The first break such that a variation that vanishes beyond it is negative, by bisection."""
+    where = sampler.path.program.layout
+    low, high = 0, sampler.count
+    while high - low > 1:
+        middle = (low + high) // 2
+        kept = free.copy()
+        kept[where.nodes[middle, 0] if sampler.point.states else where.controls[where.first[middle], 0] :] = False
+        found = count_negative(second, kept, rows, MARGIN)
+        low, high = (low, middle) if found is not None and found.negative > 0 else (middle, high)
+    return float(sampler.path.breaks[high])

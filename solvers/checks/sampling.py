@@ -1,0 +1,238 @@
+"""The solved curve anywhere between its nodes, with everything that the checks weigh there.
+
+Nothing here looks at a collocation equation: a trajectory is taken as piecewise polynomials, with controls clipped to
+their constant bounds (that is what is handed over), and the point function is evaluated wherever a check asks.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cached_property
+
+import casadi as ca
+import numpy as np
+from numpy.polynomial import legendre
+from numpy.typing import NDArray
+
+from solvers.limits import quantity_bounds
+from solvers.lowering import primed
+from solvers.problem import Seek
+from solvers.trajectory import Trajectory
+
+Array = NDArray[np.float64]
+Indices = NDArray[np.int64]
+
+_NODES, _WEIGHTS = legendre.leggauss(6)
+HALVES = np.concatenate([(_NODES + 1) / 4, (_NODES + 3) / 4])
+"""Gauss points of both halves of an interval: none of them is a collocation point of any scheme in use."""
+HALF_WEIGHTS = np.concatenate([_WEIGHTS, _WEIGHTS]) / 4
+
+
+def mapped(function: ca.Function, *arguments: Array) -> Array:
+    """A CasADi function of columns at P rows of arguments: P x outputs.  Undefined values come as NaN."""
+    count = len(arguments[0])
+    result = np.zeros((count, int(function.numel_out(0))))
+    if result.size == 0:
+        return result
+    buffer, evaluate = function.map(count).buffer()
+    held = [np.ascontiguousarray(argument, dtype=float) for argument in arguments]
+    for index, argument in enumerate(held):
+        buffer.set_arg(index, memoryview(argument))  # type: ignore[arg-type,call-arg]
+    buffer.set_res(0, memoryview(result))  # type: ignore[arg-type,call-arg]
+    evaluate()
+    return result
+
+
+@dataclass(frozen=True, slots=True)
+class Sample:
+    """P places of the curve: the interval of each, its place, the inputs of the point function, its measure.
+
+    `measure` (P) is the quadrature weight in the independent variable, zero where the sample is not a quadrature.
+    """
+
+    interval: Indices
+    local: Array
+    places: Array
+    v: Array
+    d: Array
+    measure: Array
+
+
+class Sampler:
+    """A trajectory (N intervals, n states, m controls, c pointwise constraints) that can be asked anywhere."""
+
+    def __init__(self, path: Trajectory) -> None:
+        self.path = path
+        self.compiled = path.program.compiled
+        self.point = self.compiled.point
+        self.problem = self.compiled.lowered.problem
+        self.tolerance = self.problem.options.tolerance
+        self.sign = -1.0 if self.problem.seek is Seek.MAXIMUM else 1.0
+        mesh = path.program.mesh.intervals
+        self.count = len(mesh)
+        self.stretch = np.array([i.stretch for i in mesh])
+        self.fraction = np.array([i.start for i in mesh])
+        self.width = np.array([i.width for i in mesh])
+        self.start, self.end = path.places[self.stretch], path.places[self.stretch + 1]
+        self.length = self.width * (self.end - self.start)  # of each interval, in the independent variable
+        self.span = float(path.breaks[-1] - path.breaks[0])
+        self.states = _padded(path.state_modes())
+        self.controls = _padded(path.control_modes())
+        self.costates = _padded(path.costate_modes())
+        self.bounds = quantity_bounds(self.compiled)
+        self.constants = np.array(self.compiled.constants, dtype=float)
+        self.state_names = [primed(q) for q in self.compiled.lowered.states]
+        self.control_names = [primed(q) for q in self.compiled.lowered.controls]
+
+    def sample(self, interval: Indices, local: Array, measure: Array | None = None) -> Sample:
+        """The curve at local places (0 to 1) of intervals."""
+        v = self.inputs(interval, self.of(self.states, interval, local), self.controls_at(interval, local))
+        fraction = self.fraction[interval] + self.width[interval] * local
+        d = self.data(fraction)
+        places = self.start[interval] + fraction * (self.end[interval] - self.start[interval])
+        return Sample(interval, local, places, v, d, np.zeros(len(local)) if measure is None else measure)
+
+    def grid(self, local: Array, weights: Array | None = None) -> Sample:
+        """The same local places in every interval; `weights` integrate from 0 to 1."""
+        interval = np.repeat(np.arange(self.count), len(local))
+        measure = None if weights is None else np.tile(weights, self.count) * self.length[interval]
+        return self.sample(interval, np.tile(local, self.count), measure)
+
+    def of(self, modes: Array, interval: Indices, local: Array) -> Array:
+        """Piecewise polynomials at local places (P x components)."""
+        basis = legendre.legvander(2 * local - 1, modes.shape[1] - 1)
+        return np.asarray(np.einsum("pd,pdi->pi", basis, modes[interval]))
+
+    def controls_at(self, interval: Indices, local: Array) -> Array:
+        """The controls that are handed over: inside their constant bounds."""
+        return np.clip(self.of(self.controls, interval, local), self.bounds[2], self.bounds[3])
+
+    def inputs(self, interval: Indices, states: Array, controls: Array) -> Array:
+        """The inputs v of the point function."""
+        ends = np.column_stack([self.start[interval], self.end[interval]])
+        return np.hstack([states, controls, ends, np.tile(self.path.parameters, (len(states), 1))])
+
+    def data(self, fraction: Array) -> Array:
+        """The inputs d of the point function."""
+        return np.hstack([fraction[:, None], np.tile(self.constants, (len(fraction), 1))])
+
+    def outputs(self, sample: Sample) -> Array:
+        """All outputs of the point function, per fraction of the stretch where they are rates or integrands."""
+        return mapped(self.point.value, sample.v, sample.d)
+
+    def slopes(self, sample: Sample) -> Array:
+        """The nonzeros of the outputs' Jacobian."""
+        return mapped(self.point.jacobian, sample.v, sample.d)
+
+    @cached_property
+    def halves(self) -> Sample:
+        """The grid that all integrals of first-order conditions use."""
+        return self.grid(HALVES, HALF_WEIGHTS)
+
+    @cached_property
+    def halves_outputs(self) -> Array:
+        """The outputs on that grid."""
+        return self.outputs(self.halves)
+
+    @cached_property
+    def halves_slopes(self) -> Array:
+        """The Jacobian's nonzeros on that grid."""
+        return self.slopes(self.halves)
+
+    @cached_property
+    def multiplier_modes(self) -> Array:
+        """Legendre coefficients of the multipliers of the pointwise constraints, per unit of the variable."""
+        first, mesh = self.path.program.layout.first, self.path.program.mesh.intervals
+        return _padded([i.scheme.control_modes @ self.path.multipliers[first[k] : first[k + 1]]
+                        for k, i in enumerate(mesh)])  # fmt: skip
+
+    def weights(self, sample: Sample, *, constraints: bool = True) -> Array:
+        """What each output counts in the Hamiltonian per fraction: costates, multipliers, sign of the integrand."""
+        weights = np.zeros((len(sample.local), self.point.outputs))
+        n, c = self.point.states, self.point.constraints
+        weights[:, :n] = self.of(self.costates, sample.interval, sample.local)
+        if constraints and c:
+            density = self.of(self.multiplier_modes, sample.interval, sample.local)
+            weights[:, n : n + c] = density * (self.end - self.start)[sample.interval, None]
+        weights[:, n + c : -1] = -self.path.row_multipliers[self._integral_rows]
+        weights[:, -1] = self.sign
+        return weights
+
+    @property
+    def _integral_rows(self) -> slice:
+        rows = self.path.program.rows
+        return slice(rows.integrals, rows.conditions)
+
+    def gradient(self, sample: Sample, slopes: Array, weights: Array) -> Array:
+        """Derivative of the weighed outputs per unit of the independent variable, by every input (P x inputs)."""
+        rows = np.array(self.point.jacobian_rows, dtype=int)
+        columns = np.array(self.point.jacobian_columns, dtype=int)
+        total = np.zeros((len(slopes), self.point.inputs))
+        weighed = slopes * weights[:, rows]
+        for entry, column in enumerate(columns):
+            total[:, column] += weighed[:, entry]
+        return np.asarray(total / (self.end - self.start)[sample.interval, None])
+
+    def mean(self, values: Array) -> Array:
+        """The mean over the curve of values on the grid of halves."""
+        return np.asarray(self.halves.measure @ values / self.span)
+
+    @cached_property
+    def state_sizes(self) -> Array:
+        """The largest absolute value of each state, or its scale where it is zero all along."""
+        n = self.point.states
+        sizes = np.abs(np.vstack([self.path.nodes, self.halves.v[:, :n]])).max(axis=0, initial=0.0)
+        scale = self.path.program.scale[self.path.program.layout.nodes[0]]
+        return np.where(sizes > 1e-12 * scale, sizes, scale)
+
+    @cached_property
+    def state_extents(self) -> Array:
+        """How far each state moves; its size where it hardly does."""
+        extent = np.ptp(np.vstack([self.path.nodes, self.halves.v[:, : self.point.states]]), axis=0)
+        return np.asarray(np.where(extent > 1e-3 * self.state_sizes, extent, self.state_sizes))
+
+    @cached_property
+    def control_sizes(self) -> Array:
+        """The mean absolute value of each control (finite also where a slope is not), or its scale."""
+        n, m = self.point.states, self.point.controls
+        sizes = self.mean(np.abs(self.halves.v[:, n : n + m]))
+        scale = self.path.program.scale[self.path.program.layout.controls[0]]
+        return np.where(sizes > 1e-9 * scale, sizes, scale)
+
+    @cached_property
+    def input_sizes(self) -> Array:
+        """A size for each input of the point function."""
+        parameters = self.path.program.scale[self.path.program.layout.parameters]
+        return np.concatenate([self.state_sizes, self.control_sizes, [abs(self.span)] * 2, parameters])
+
+    @cached_property
+    def power(self) -> float:
+        """The size of the Hamiltonian: the mean of |integrand| + sum |costate x rate|, per unit of the variable."""
+        n = self.point.states
+        terms = np.abs(self.halves_outputs * self.weights(self.halves, constraints=False))
+        terms[:, n : n + self.point.constraints] = 0.0
+        per_unit = np.nansum(terms, axis=1) / np.abs(self.end - self.start)[self.halves.interval]
+        floor = 1e-6 * abs(self.path.program.value_scale) / abs(self.span)
+        return max(float(self.mean(per_unit)), float(floor))
+
+    @cached_property
+    def value_size(self) -> float:
+        """The size of the functional that first-order changes are compared with."""
+        return float(self.power * abs(self.span))
+
+    def output_sizes(self) -> Array:
+        """For each output the mean over the curve of what its slopes make of the sizes of its inputs."""
+        sizes = np.zeros(self.point.outputs)
+        means = self.mean(np.nan_to_num(np.abs(self.halves_slopes), nan=0.0, posinf=0.0))
+        for row, column, value in zip(self.point.jacobian_rows, self.point.jacobian_columns, means, strict=True):
+            sizes[row] += value * self.input_sizes[column]
+        return sizes
+
+
+def _padded(modes: list[Array]) -> Array:
+    """Coefficients of all intervals in one array; missing degrees are zero."""
+    degree = max(len(part) for part in modes)
+    result = np.zeros((len(modes), degree, modes[0].shape[1]))
+    for k, part in enumerate(modes):
+        result[k, : len(part)] = part
+    return result

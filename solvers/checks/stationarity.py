@@ -1,0 +1,198 @@
+"""Is the curve an extremal?  Costate equations and stationarity of the Hamiltonian, looked at between the nodes.
+
+With H = integrand + costates x rates + multipliers x constraints, the first variation of the functional is
+integral of (H_u du + (p' + H_x) dx).  Three figures are taken, each as the share of the functional that variations as
+large as the curve itself could gain by it:
+
+- *controls*: the step that the projected gradient of H would take in each control, averaged over the curve (at a bound
+  only a gradient that points inside counts);
+- *costates*: the weak form of p' = -H_x on every interval, so that no noise is differentiated; the variation vanishes
+  towards an end where the state is fixed, as it must, which also gives infinite costates there their right weight;
+  multipliers of constraints on states count as measures, so a costate may jump where such a constraint is touched;
+- *multipliers*: of inequalities, times the distance from their limit, which must vanish.
+
+The threshold is the square root of the tolerance: at a minimum a relative gradient of e leaves a gain of the order e^2
+in the value, and polynomials of control and costate are one order less accurate than those of the states.
+
+Reference: Bryson, Ho (1975), Applied Optimal Control, chapters 2 and 3 (from memory).
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from solvers.checks.sampling import Sampler, mapped
+from solvers.collocation import Family
+from solvers.limits import constants_of, interval_of
+from solvers.solution import Check, Status
+
+Array = NDArray[np.float64]
+
+NAME = "stationarity"
+
+Finding = tuple[float, float, str, str]
+"""Figure, place, subject, sentence."""
+
+
+def check(sampler: Sampler) -> Check:
+    """The largest of the three figures against the square root of the tolerance."""
+    threshold = float(np.sqrt(sampler.tolerance))
+    findings = [*_controls(sampler), *_costates(sampler), *_multipliers(sampler)]
+    if not findings:
+        return Check(NAME, Status.NOT_APPLICABLE, "There is no function to vary.")
+    figure, place, subject, sentence = max(findings, key=lambda finding: finding[0])
+    status = Status.PASSED if figure <= threshold else Status.FAILED
+    return Check(NAME, status, sentence, figure, threshold, place, subject)
+
+
+def _finite(values: Array) -> Array:
+    return np.where(np.isfinite(values), values, np.inf)
+
+
+def _controls(sampler: Sampler) -> list[Finding]:
+    """For each control the mean projected step, relative to its size."""
+    m, sample = sampler.point.controls, sampler.halves
+    steps = control_steps(sampler)
+    findings = []
+    for j in range(m):
+        figure = float(sampler.mean(steps[:, j]))
+        worst = int(np.argmax(steps[:, j] * np.abs(sample.measure)))
+        findings.append((figure, float(sample.places[worst]), sampler.control_names[j],
+                         f"The Hamiltonian is stationary in {sampler.control_names[j]} to {figure:.1e} "
+                         f"(mean step of its gradient relative to the control)."))  # fmt: skip
+    return findings
+
+
+def slopes_of_hamiltonian(sampler: Sampler) -> Array:
+    """H_u on the grid of halves, scaled: the relative change of H by a change of each control as large as itself."""
+    n, m = sampler.point.states, sampler.point.controls
+    gradient = sampler.gradient(sampler.halves, sampler.halves_slopes, sampler.weights(sampler.halves))
+    return gradient[:, n : n + m] * sampler.control_sizes / sampler.power
+
+
+def control_steps(sampler: Sampler) -> Array:
+    """The step of the projected gradient on the grid of halves, relative to the size of each control."""
+    n, m = sampler.point.states, sampler.point.controls
+    controls, sizes = sampler.halves.v[:, n : n + m], sampler.control_sizes
+    slopes = _finite(slopes_of_hamiltonian(sampler))
+    moved = np.clip(controls - sizes * slopes, sampler.bounds[2], sampler.bounds[3])
+    return np.abs(moved - controls) / sizes
+
+
+def _costates(sampler: Sampler) -> list[Finding]:
+    """For each state the sum over all intervals of the weak form's residual."""
+    n, sample, count = sampler.point.states, sampler.halves, sampler.count
+    if n == 0:
+        return []
+    gradient = sampler.gradient(sample, sampler.halves_slopes, sampler.weights(sample, constraints=False))
+    costates = sampler.of(sampler.costates, sample.interval, sample.local)
+    every = np.arange(count)
+    left = sampler.of(sampler.costates, every, np.zeros(count))
+    right = sampler.of(sampler.costates, every, np.ones(count))
+    before_place = np.append(np.diff(sampler.stretch) > 0, True)
+    right[:-1] = np.where(before_place[:-1, None], right[:-1], left[1:])
+    fixed = _fixed_ends(sampler)
+    edges = (sampler.path.breaks - sampler.path.breaks[0]) / sampler.span
+    share = (sample.places - sampler.path.breaks[0]) / sampler.span
+    measures = _measures(sampler)
+    findings = []
+    for j in range(n):
+        weight, slope = _variation(share, fixed[j])
+        terms = (weight * gradient[:, j] - slope / sampler.span * costates[:, j]) * sample.measure
+        at_edges = _variation(edges, fixed[j])[0]
+        residual = terms.reshape(count, -1).sum(axis=1) + at_edges[1:] * right[:, j] - at_edges[:-1] * left[:, j]
+        residual = _finite(np.abs(residual + _variation(measures[1], fixed[j])[0] @ measures[0][j]))
+        residual *= sampler.state_extents[j] / sampler.value_size
+        figure, worst = float(residual.sum()), int(np.argmax(residual))
+        name = sampler.state_names[j]
+        findings.append((figure, float(sampler.path.breaks[worst]), name,
+                         f"The costate equation of {name} holds to {figure:.1e} of the functional."))  # fmt: skip
+    return findings
+
+
+def _variation(share: Array, fixed: tuple[bool, bool]) -> tuple[Array, Array]:
+    """A smooth variation of largest value one that vanishes at fixed ends, and its slope, at shares of the range."""
+    match fixed:
+        case (True, True):
+            return 4 * share * (1 - share), 4 - 8 * share
+        case (True, False):
+            return share * (2 - share), 2 - 2 * share
+        case (False, True):
+            return 1 - share**2, -2 * share
+        case _:
+            return np.ones_like(share), np.zeros_like(share)
+
+
+def _fixed_ends(sampler: Sampler) -> list[tuple[bool, bool]]:
+    last = len(sampler.problem.places) - 1
+    held = {(state, place) for state, place, condition in sampler.compiled.fixed if condition.equality}
+    return [((j, 0) in held, (j, last) in held) for j in range(sampler.point.states)]
+
+
+def _measures(sampler: Sampler) -> tuple[Array, Array]:
+    """What multipliers of constraints and bounds put on each state at the points.
+
+    First n matrices (P x N) so that (weights at the P points) @ matrix sums over each interval; then the points' shares
+    of the range.  Multipliers at a place belong to the conditions there and are left out.
+    """
+    path, n, c = sampler.path, sampler.point.states, sampler.point.constraints
+    where = path.program.layout
+    degrees = np.diff(where.first)
+    owner = np.repeat(np.arange(sampler.count), degrees)
+    shares = (path.points - path.breaks[0]) / sampler.span
+    put = path.bound_multipliers[where.inner].copy()
+    if c:
+        local = (where.fractions - sampler.fraction[owner]) / sampler.width[owner]
+        sample = sampler.sample(owner, local)
+        rows = np.array(sampler.point.jacobian_rows, dtype=int)
+        columns = np.array(sampler.point.jacobian_columns, dtype=int)
+        chosen = np.flatnonzero((rows >= n) & (rows < n + c) & (columns < n))
+        slopes = sampler.slopes(sample)
+        multipliers = path.row_multipliers[path.program.rows.pointwise : path.program.rows.integrals].reshape(-1, c)
+        for entry in chosen:
+            put[:, columns[entry]] += slopes[:, entry] * multipliers[:, rows[entry] - n]
+    gauss = np.array([i.scheme.family is Family.GAUSS for i in path.program.mesh.intervals])
+    at_place = np.isin(np.arange(1, sampler.count + 1), where.at_place)
+    last = where.first[1:] - 1
+    put[last[at_place & ~gauss]] = 0.0
+    extra = np.flatnonzero(gauss & ~at_place)  # a Gauss interval's right node is no point of its own
+    put = np.vstack([put, path.bound_multipliers[where.nodes[extra + 1]].reshape(len(extra), n)])
+    owner = np.concatenate([owner, extra])
+    shares = np.concatenate([shares, (path.breaks[extra + 1] - path.breaks[0]) / sampler.span])
+    matrices = np.zeros((n, len(owner), sampler.count))
+    matrices[:, np.arange(len(owner)), owner] = put.T
+    return matrices, shares
+
+
+def _multipliers(sampler: Sampler) -> list[Finding]:
+    """Multipliers of inequalities times their distance from the limit, summed, relative to the functional."""
+    path, n, c = sampler.path, sampler.point.states, sampler.point.constraints
+    where, findings = path.program.layout, []
+    place = float(path.breaks[0])
+    for j in np.flatnonzero(np.isfinite(sampler.bounds[0]) | np.isfinite(sampler.bounds[1])):
+        figure = complementarity(path.bound_multipliers[where.inner[:, j]], path.states[:, j], sampler.bounds[0][j],
+                                 sampler.bounds[1][j], sampler.state_sizes[j]) / sampler.value_size  # fmt: skip
+        findings.append((figure, place, sampler.state_names[j]))
+    lines = len(sampler.compiled.lowered.equalities)
+    if c > lines:
+        degrees = np.diff(where.first)
+        owner = np.repeat(np.arange(sampler.count), degrees)
+        sample = sampler.sample(owner, (where.fractions - sampler.fraction[owner]) / sampler.width[owner])
+        values = mapped(sampler.point.value, sample.v, sample.d)[:, n + lines : n + c]
+        rows = path.row_multipliers[path.program.rows.pointwise : path.program.rows.integrals].reshape(-1, c)
+        sizes = sampler.output_sizes()[n + lines : n + c]
+        constants = constants_of(sampler.compiled)
+        for k, condition in enumerate(sampler.compiled.pointwise[lines:]):
+            if not condition.equality:
+                figure = complementarity(rows[:, lines + k], values[:, k], *interval_of(condition, constants), sizes[k])
+                findings.append((figure / sampler.value_size, place, condition.label))
+    return [(figure, at, subject, f"The multiplier of '{subject}' times the distance from the limit "
+             f"is {figure:.1e} of the functional.") for figure, at, subject in findings]  # fmt: skip
+
+
+def complementarity(multipliers: Array, values: Array, lower: float, upper: float, size: float) -> float:
+    """Sum of |multiplier| times distance from the limit that its sign belongs to (at most the size of the body)."""
+    above = np.minimum(np.abs(upper - values), size) * np.maximum(multipliers, 0.0)
+    below = np.minimum(np.abs(values - lower), size) * np.maximum(-multipliers, 0.0)
+    return float(np.nansum(above) + np.nansum(below))

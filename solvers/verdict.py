@@ -1,0 +1,82 @@
+"""From the checks to the verdict: a result is called what its checks show, and never more.
+
+Feasibility and first order come first: without them nothing else counts.  Then the necessary conditions of second
+order can refute the sort of extremum that was sought; sufficient ones can establish it, near the curve (second
+variation) or everywhere (convexity).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from enum import Enum
+
+from solvers.checks import (
+    conditions,
+    convexity,
+    curvature,
+    first_integral,
+    free_ends,
+    legendre,
+    limits,
+    motion,
+    refinement,
+    stationarity,
+)
+from solvers.problem import Seek
+from solvers.solution import Check, Status, Verdict
+
+
+class End(Enum):
+    """How the search for the curve ended."""
+
+    CONVERGED = "converged"
+    LIMIT = "a limit was reached"
+    INFEASIBLE = "infeasible"
+    UNBOUNDED = "unbounded"
+
+
+FEASIBLE = (motion.NAME, limits.NAME, conditions.NAME)
+FIRST_ORDER = (stationarity.NAME, free_ends.NAME, first_integral.NAME, refinement.NAME)
+
+_WORDS = {
+    Seek.MINIMUM: (Verdict.GLOBAL_MINIMUM, Verdict.LOCAL_MINIMUM, Verdict.NOT_A_MINIMUM),
+    Seek.MAXIMUM: (Verdict.GLOBAL_MAXIMUM, Verdict.LOCAL_MAXIMUM, Verdict.NOT_A_MAXIMUM),
+}
+
+
+def judge(seek: Seek, checks: Sequence[Check], end: End = End.CONVERGED) -> Verdict:
+    """The verdict on a curve.
+
+    A check that is not applicable neither helps nor harms, but a first-order or feasibility check that is missing
+    altogether counts as failed.
+    """
+    if end is End.INFEASIBLE:
+        return Verdict.INFEASIBLE
+    if end is End.UNBOUNDED:
+        return Verdict.NO_OPTIMUM
+    status = {check.name: check.status for check in checks}
+
+    def holds(names: Sequence[str]) -> bool:
+        return all(status.get(name, Status.FAILED) is not Status.FAILED for name in names)
+
+    if not holds(FEASIBLE):
+        return Verdict.NOT_VERIFIED
+    if end is End.LIMIT:
+        return Verdict.BEST_FOUND
+    if not holds(FIRST_ORDER):
+        return Verdict.NOT_VERIFIED
+    if seek is Seek.STATIONARY:
+        return Verdict.STATIONARY
+    everywhere, nearby, refuted = _WORDS[seek]
+    if not holds((legendre.NAME, curvature.NAME)):
+        return refuted
+    if status.get(convexity.NAME) is Status.PASSED:
+        return everywhere
+    if status.get(curvature.NAME) is Status.PASSED:
+        return nearby
+    return Verdict.STATIONARY
+
+
+def failures(checks: Sequence[Check]) -> tuple[Check, ...]:
+    """The checks that failed, in their order: what a reader of "not verified" wants to know."""
+    return tuple(check for check in checks if check.status is Status.FAILED)
