@@ -1,0 +1,124 @@
+"""Tables of a finished run in every format, with the rows, the columns and the derivatives asked for."""
+
+import csv
+import io
+import json
+
+import numpy as np
+import openpyxl
+import pytest
+
+# y(x) = 2 x / 3 of the straight line.
+SLOPE = 2 / 3
+
+
+def _rows(text):
+    heading, *rows = csv.reader(io.StringIO(text))
+    return heading, np.array(rows, dtype=float)
+
+
+def test_rows_are_evenly_spaced_and_end_exactly_at_the_end(client, line):
+    heading, rows = _rows(client.get(f"{line['links']['self']}/table.csv?rows=7").text)
+    assert heading == ["x [m]", "y [m]"]
+    assert rows[:, 0].tolist() == np.linspace(0, 3, 7).tolist()
+    assert rows[:, 1] == pytest.approx(SLOPE * rows[:, 0], abs=1e-8)
+
+
+def test_a_step_that_does_not_fit_still_ends_exactly_at_the_end(client, line):
+    _, rows = _rows(client.get(f"{line['links']['self']}/table.csv?step=0.7").text)
+    assert rows[:, 0].tolist() == pytest.approx([0, 0.7, 1.4, 2.1, 2.8, 3])
+    assert rows[-1, 0] == 3
+
+
+def test_nodes_are_the_default(client, line):
+    result = client.get(line["links"]["result"]).json()
+    _, rows = _rows(client.get(line["links"]["table"]).text)
+    assert set(result["curve"]["arcs"][0]["breaks"]) <= set(rows[:, 0])
+
+
+def test_derivatives_and_columns_are_chosen(client, line):
+    heading, rows = _rows(client.get(f"{line['links']['self']}/table.csv?rows=3&derivatives=3").text)
+    assert heading == ["x [m]", "y [m]", "y'", "y'' [1/m]", "y''' [1/m^2]"]
+    assert rows[:, 2] == pytest.approx(SLOPE, abs=1e-7)
+    heading, _ = _rows(client.get(f"{line['links']['self']}/table.csv", params={"rows": 3, "columns": "y',y"}).text)
+    assert heading == ["x [m]", "y'", "y [m]"]
+
+
+def _sheet(body):
+    return list(openpyxl.load_workbook(io.BytesIO(body)).worksheets[0].iter_rows(min_row=2, values_only=True))
+
+
+READERS = {
+    "csv": lambda body: _rows(body.decode())[1],
+    "json": lambda body: np.array(json.loads(body)["rows"]),
+    "xlsx": lambda body: np.array(_sheet(body)),
+    "npz": lambda body: np.load(io.BytesIO(body))["rows"],
+}
+
+
+@pytest.mark.parametrize("suffix", READERS)
+def test_every_format_holds_the_same_numbers(client, line, suffix):
+    answer = client.get(f"{line['links']['self']}/table.{suffix}?rows=5&derivatives=1")
+    assert answer.status_code == 200
+    assert f".{suffix}" in answer.headers["content-disposition"]
+    _, expected = _rows(client.get(f"{line['links']['self']}/table.csv?rows=5&derivatives=1").text)
+    found = READERS[suffix](answer.content)
+    assert np.array_equal(found, expected)
+
+
+@pytest.mark.parametrize(
+    ("accept", "suffix"),
+    [
+        ("*/*", "csv"),
+        ("text/csv", "csv"),
+        ("application/json", "json"),
+        ("application/json;q=0.5, application/x-npz", "npz"),
+    ],
+)
+def test_the_format_is_negotiated_where_there_is_no_suffix(client, line, accept, suffix):
+    answer = client.get(f"{line['links']['self']}/table?rows=3", headers={"accept": accept})
+    same = client.get(f"{line['links']['self']}/table.{suffix}?rows=3")
+    assert answer.headers["content-type"] == same.headers["content-type"]
+    assert answer.headers["content-location"].endswith(f"table.{suffix}?rows=3")
+    assert "Accept" in answer.headers["vary"]
+
+
+def test_a_format_that_there_is_not_is_refused(client, line):
+    assert client.get(f"{line['links']['self']}/table", headers={"accept": "image/png"}).status_code == 406
+    assert client.get(f"{line['links']['self']}/table.pdf").status_code == 404
+
+
+def test_the_csv_file_is_described_by_its_metadata(client, line):
+    table = client.get(f"{line['links']['self']}/table.csv?rows=4&derivatives=1")
+    described = client.get(table.links["describedby"]["url"])
+    assert described.headers["content-type"] == "application/csvm+json"
+    titles = [column["titles"] for column in described.json()["tableSchema"]["columns"]]
+    assert titles == _rows(table.text)[0]
+    assert described.json()["url"] == "table.csv?rows=4&derivatives=1"
+
+
+def test_a_table_is_not_sent_twice(client, line):
+    address = f"{line['links']['self']}/table.csv?rows=4"
+    tag = client.get(address).headers["etag"]
+    assert client.get(address, headers={"if-none-match": tag}).status_code == 304
+
+
+@pytest.mark.parametrize(
+    ("query", "code"),
+    [
+        ("rows=1", "too-few-rows"),
+        ("rows=1000000000", "too-many-rows"),
+        ("rows=10&step=0.1", "rows-and-step"),
+        ("step=0", "bad-step"),
+        ("step=nan", "bad-step"),
+        ("step=1e-12", "too-many-rows"),
+        ("derivatives=4", "bad-derivatives"),
+        ("columns=z", "unknown-column"),
+        ("rows=ten", "int-parsing"),
+        ("row=10", "extra-forbidden"),
+    ],
+)
+def test_a_table_that_cannot_be_made_says_why(client, line, query, code):
+    answer = client.get(f"{line['links']['self']}/table.csv?{query}")
+    assert answer.status_code == 422
+    assert [complaint["code"] for complaint in answer.json()["complaints"]] == [code]
