@@ -2,33 +2,76 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
 from numpy.polynomial import legendre
+from numpy.typing import NDArray
 
-from solvers.curve import Array, Curve
+from solvers.curve import Array
 from web.unit_text import per
+
+Intervals = NDArray[np.intp]
 
 
 @dataclass(frozen=True, slots=True)
 class Arc:
-    """One stretch of the independent variable with its mesh; the only one has the name ""."""
+    """One stretch of the independent variable with its mesh; the only one has the name "".
+
+    `breaks` has n + 1 places.  `functions` maps a name with primes to Legendre coefficients of the shape (degree + 1,
+    n), one column for each interval, in the local variable that runs from -1 to 1.
+    """
 
     name: str
-    curve: Curve
+    breaks: Array
+    functions: Mapping[str, Array]
 
     @property
     def start(self) -> float:
         """Where the arc begins."""
-        return float(self.curve.breaks[0])
+        return float(self.breaks[0])
 
     @property
     def end(self) -> float:
         """Where the arc ends."""
-        return float(self.curve.breaks[-1])
+        return float(self.breaks[-1])
+
+    def coefficients(self, name: str, derivative: int = 0) -> Array | None:
+        """Legendre coefficients of a derivative as in `functions`; None where the arc does not have the function.
+
+        The highest stored derivative is differentiated further: each differentiation of a polynomial costs accuracy.
+        """
+        for order in range(derivative, -1, -1):
+            stored = self.functions.get(name + "'" * order)
+            if stored is not None:
+                further = derivative - order
+                if not further:
+                    return stored
+                scale = (2 / np.diff(self.breaks)) ** further
+                return np.asarray(legendre.legder(stored, further, axis=0) * scale, dtype=float)
+        return None
+
+    def places(self, local: Array, intervals: Intervals) -> Array:
+        """Places from -1 to 1 within their intervals as values of the independent variable."""
+        left, right = self.breaks[intervals], self.breaks[intervals + 1]
+        return np.asarray(left + (right - left) * (local + 1) / 2, dtype=float)
+
+    def evaluate(self, name: str, derivative: int, places: Array) -> Array:
+        """Values at places on the arc, NaN where it does not have the function; at a break the interval on its left
+        speaks."""
+        coefficients = self.coefficients(name, derivative)
+        if coefficients is None:
+            return np.full(np.shape(places), np.nan)
+        owner = np.clip(np.searchsorted(self.breaks, places, side="left") - 1, 0, len(self.breaks) - 2)
+        left, right = self.breaks[owner], self.breaks[owner + 1]
+        return values((2 * places - left - right) / (right - left), coefficients, owner)
+
+
+def values(local: Array, coefficients: Array, intervals: Intervals) -> Array:
+    """The polynomials of the given intervals at places from -1 to 1: three arrays in step, one value each."""
+    return np.asarray(legendre.legval(local, coefficients[:, intervals], tensor=False), dtype=float)
 
 
 @dataclass(frozen=True, slots=True)
@@ -54,9 +97,14 @@ class Trajectory:
         return self.arcs[-1].end
 
     @property
+    def stored(self) -> tuple[str, ...]:
+        """Every function of the document, in its order."""
+        return tuple(dict.fromkeys(name for arc in self.arcs for name in arc.functions))
+
+    @property
     def names(self) -> tuple[str, ...]:
         """The functions without their stored derivatives, in the order of the document."""
-        stored = dict.fromkeys(name for arc in self.arcs for name in arc.curve.functions)
+        stored = self.stored
         return tuple(name for name in stored if not (name.endswith("'") and name.rstrip("'") in stored))
 
     def unit_of(self, name: str, derivative: int = 0) -> str:
@@ -64,73 +112,41 @@ class Trajectory:
         stored = self.units.get(name + "'" * derivative)
         return per(self.units.get(name, ""), self.unit, derivative) if stored is None else stored
 
-    def evaluate(self, arc: Arc, name: str, derivative: int, places: Array) -> Array:
-        """Values of a derivative on one arc, NaN where the arc does not have the function.
-
-        The highest stored derivative is differentiated further: each differentiation of a polynomial costs accuracy.
-        At a break the interval on its left speaks.
-        """
-        stored, further = _source(arc.curve, name, derivative)
-        if stored is None:
-            return np.full(np.shape(places), np.nan)
-        return arc.curve.evaluate(stored, places, further)
-
-    def pieces(self, arc: Arc, name: str, derivative: int) -> tuple[Array, ...]:
-        """Legendre coefficients of a derivative, interval by interval; empty where the arc does not have it."""
-        stored, further = _source(arc.curve, name, derivative)
-        if stored is None:
-            return ()
-        pieces = arc.curve.functions[stored]
-        if not further:
-            return pieces
-        widths = np.diff(arc.curve.breaks)
-        return tuple(
-            legendre.legder(piece, further) * (2 / width) ** further
-            for piece, width in zip(pieces, widths, strict=True)
-        )
+    def by_arc(self, places: Array) -> list[tuple[Arc, Array]]:
+        """Rising places shared out among the arcs; a junction goes to the arc that ends there."""
+        owner = np.searchsorted([arc.end for arc in self.arcs[:-1]], places, side="left")
+        return [(arc, places[owner == number]) for number, arc in enumerate(self.arcs)]
 
 
 def read_trajectory(result: Mapping[str, Any]) -> Trajectory | None:
     """The curve of a result document, or None where it has none."""
     curve = result.get("curve")
-    if not curve or not curve["arcs"]:
-        return None
-    independent = curve["independent"]
-    return Trajectory(independent["name"], independent.get("unit") or "", _arcs(curve["arcs"]), _units(curve))
+    return _read(curve, curve["independent"]) if curve and curve["arcs"] else None
 
 
 def read_costates(result: Mapping[str, Any]) -> Trajectory | None:
     """The multipliers along the curve of a result document, or None where it has none."""
-    costates = (result.get("multipliers") or {}).get("costates")
-    if not result.get("curve") or not costates or not costates["arcs"]:
-        return None
-    independent = result["curve"]["independent"]
-    return Trajectory(independent["name"], independent.get("unit") or "", _arcs(costates["arcs"]), _units(costates))
+    curve, costates = result.get("curve"), (result.get("multipliers") or {}).get("costates")
+    return _read(costates, curve["independent"]) if curve and costates and costates["arcs"] else None
 
 
-def _arcs(documents: list[Mapping[str, Any]]) -> tuple[Arc, ...]:
-    return tuple(
-        Arc(
-            document.get("name") or "",
-            Curve(
-                np.array(document["breaks"], dtype=float),
-                {
-                    name: tuple(np.array(piece, dtype=float) for piece in pieces)
-                    for name, pieces in document["functions"].items()
-                },
-            ),
-        )
-        for document in documents
+def _read(functions: Mapping[str, Any], independent: Mapping[str, Any]) -> Trajectory:
+    return Trajectory(
+        independent=str(independent["name"]),
+        unit=str(independent.get("unit") or ""),
+        arcs=tuple(
+            Arc(
+                str(arc.get("name") or ""),
+                np.array(arc["breaks"], dtype=float),
+                {name: _padded(pieces) for name, pieces in arc["functions"].items()},
+            )
+            for arc in functions["arcs"]
+        ),
+        units={name: unit or "" for name, unit in (functions.get("units") or {}).items()},
     )
 
 
-def _units(document: Mapping[str, Any]) -> dict[str, str]:
-    return {name: unit or "" for name, unit in (document.get("units") or {}).items()}
-
-
-def _source(curve: Curve, name: str, derivative: int) -> tuple[str | None, int]:
-    """The stored function to start from and how often to differentiate it."""
-    for order in range(derivative, -1, -1):
-        if name + "'" * order in curve.functions:
-            return name + "'" * order, derivative - order
-    return None, 0
+def _padded(pieces: Sequence[Sequence[float]]) -> Array:
+    """Coefficients of all intervals as columns; lower degrees end in zeros."""
+    height = max(len(piece) for piece in pieces)
+    return np.array([[*piece, *[0.0] * (height - len(piece))] for piece in pieces], dtype=float).T

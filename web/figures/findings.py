@@ -10,25 +10,36 @@ from solvers.curve import Array
 from web.display import quantity
 from web.extremes import Extremes
 
-_FLAT = 1e-9
+_FLAT = 1e-7
+_LEAP = 0.02
 _WIGGLE = 1e-6
 _SEEN = 1e-4
 _MOST_TOLD = 3
 Jump = tuple[float, float, float]
 
 
-def course(name: str, unit: str, values: Array, reach: Extremes | None, independent: tuple[str, str]) -> str:
+def course(
+    name: str,
+    unit: str,
+    values: Array,
+    reach: Extremes | None,
+    independent: tuple[str, str],
+    jumps: Sequence[Jump] = (),
+) -> str:
     """`y falls from 2 m to 1.04 m at x = 1.37 m and ends at 2.4 m`, without a full stop.
 
     `values` run along the curve, NaN where there is none; `reach` are the exact extremes.
     """
     values = values[np.isfinite(values)]
-    if not len(values) or reach is None:
-        return f"{name} is not defined here" if not len(values) else f"{name} stays at {amount(0.0, unit)}"
+    if not len(values):
+        return f"{name} is not defined here"
     first, last = float(values[0]), float(values[-1])
-    extent = reach.highest - reach.lowest
-    if extent <= _FLAT * reach.largest:
+    extent = 0.0 if reach is None else reach.highest - reach.lowest
+    if reach is None or extent <= _FLAT * reach.largest:
         return f"{name} stays at {amount(first, unit)}"
+    leaps = [jump for jump in jumps if abs(jump[2] - jump[1]) > _LEAP * extent]
+    if leaps:
+        return _leaping(name, unit, leaps, reach, independent)
     steps = np.diff(values)
     for word, sign in (("rises", 1), ("falls", -1)):
         if np.all(sign * steps >= -_WIGGLE * extent):
@@ -42,16 +53,16 @@ def course(name: str, unit: str, values: Array, reach: Extremes | None, independ
     return ", ".join(parts[:-1]) + " and " + parts[-1]
 
 
-def switching(name: str, unit: str, jumps: Sequence[Jump], independent: tuple[str, str]) -> str:
-    """`a jumps at t = 0.14 s from 2 m/s² to −2 m/s²`, without a full stop; "" where it does not jump."""
-    if not jumps:
-        return ""
+def _leaping(name: str, unit: str, leaps: Sequence[Jump], reach: Extremes, independent: tuple[str, str]) -> str:
+    """`a jumps at t = 0.14 s from 2 m/s² to −2 m/s²`; many jumps are counted, not told."""
+    if len(leaps) > _MOST_TOLD:
+        within = f"between {amount(reach.lowest, unit)} and {amount(reach.highest, unit)}"
+        return f"{name} lies {within} and jumps at {len(leaps)} places"
     told = " and ".join(
         f"at {_at(independent, place)} from {amount(before, unit)} to {amount(after, unit)}"
-        for place, before, after in jumps[:_MOST_TOLD]
+        for place, before, after in leaps
     )
-    more = len(jumps) - _MOST_TOLD
-    return f"{name} jumps {told}" + (f" and at {more} more places" if more > 0 else "")
+    return f"{name} jumps {told}"
 
 
 def sentence(parts: Sequence[str]) -> str:

@@ -36,8 +36,8 @@ def plots(result: Mapping[str, Any]) -> tuple[Plot, ...]:
         made += _derivatives(trajectory)
         costates = read_costates(result)
         if costates is not None:
-            named = {name: f"costate of {name}" for name in trajectory.names}
-            made += _grouped(costates, costates.names, 0, "costate", "Multipliers", named)
+            named = {name: f"costate of {name}" for name in trajectory.stored}
+            made += _grouped(costates, costates.stored, 0, "costate", "Multipliers", named)
     made += _history(result)
     if trajectory is not None:
         made += _mesh(trajectory)
@@ -56,11 +56,7 @@ def _functions(trajectory: Trajectory) -> Iterable[Plot]:
 def _derivatives(trajectory: Trajectory) -> Iterable[Plot]:
     """Each derivative that the result stores: what a limit or a smoothness condition may be on."""
     for order in (1, 2, 3):
-        stored = [
-            name
-            for name in trajectory.names
-            if any(name + "'" * order in arc.curve.functions for arc in trajectory.arcs)
-        ]
+        stored = [name for name in trajectory.names if name + "'" * order in trajectory.stored]
         yield from _grouped(trajectory, stored, order, f"derivative-{order}", f"{_ORDINALS[order]} derivative")
 
 
@@ -93,8 +89,9 @@ def _over_independent(
         places, values = series(trajectory, name, order)
         traces.append(Trace(label, places, values, count))
         told.append(
-            findings.switching(label, unit, jumps(trajectory, name, order), independent)
-            or findings.course(label, unit, values, extremes_of(trajectory, name, order), independent)
+            findings.course(
+                label, unit, values, extremes_of(trajectory, name, order), independent, jumps(trajectory, name, order)
+            )
         )
     together = ", ".join(trace.label for trace in traces)
     plot = Plot(
@@ -118,20 +115,11 @@ def _path(trajectory: Trajectory) -> Iterable[Plot]:
         return
     first, second = flat
     unit = trajectory.unit_of(first)
-    if trajectory.unit_of(second) != unit or any(
-        not trajectory.pieces(arc, n, 0) for arc in trajectory.arcs for n in flat
-    ):
+    if trajectory.unit_of(second) != unit or any(arc.coefficients(n) is None for arc in trajectory.arcs for n in flat):
         return
     every = np.union1d(series(trajectory, first)[0], series(trajectory, second)[0])
-    pair = [
-        np.concatenate(
-            [
-                trajectory.evaluate(arc, name, 0, every[(every >= arc.start) & (every <= arc.end)])
-                for arc in trajectory.arcs
-            ]
-        )
-        for name in flat
-    ]
+    shared = trajectory.by_arc(every)
+    pair = [np.concatenate([arc.evaluate(name, 0, some) for arc, some in shared]) for name in flat]
     independent = (trajectory.independent, trajectory.unit)
     told = [
         findings.course(name, unit, values, extremes_of(trajectory, name, 0), independent)
@@ -178,9 +166,9 @@ def _history(result: Mapping[str, Any]) -> Iterable[Plot]:
 
 def _mesh(trajectory: Trajectory) -> Iterable[Plot]:
     """Where the intervals are short the curve was hard."""
-    edges = np.concatenate([arc.curve.breaks for arc in trajectory.arcs])
-    widths = np.concatenate([np.diff(arc.curve.breaks) for arc in trajectory.arcs])
-    lefts = np.concatenate([arc.curve.breaks[:-1] for arc in trajectory.arcs])
+    edges = np.concatenate([arc.breaks for arc in trajectory.arcs])
+    widths = np.concatenate([np.diff(arc.breaks) for arc in trajectory.arcs])
+    lefts = np.concatenate([arc.breaks[:-1] for arc in trajectory.arcs])
     if len(widths) < 2:
         return
     shown = np.unique(np.linspace(0, len(widths) - 1, min(len(widths), 1000)).astype(int))
@@ -221,15 +209,10 @@ def _mesh_finding(trajectory: Trajectory, lefts: Array, widths: Array) -> str:
 
 def _some_rows(trajectory: Trajectory, columns: list[tuple[str, int]]) -> Array:
     """A few evenly spaced rows over all arcs; at a junction the arc that ends there speaks."""
-    places = np.linspace(trajectory.start, trajectory.end, TABLE_ROWS)
-    owner = np.searchsorted([arc.end for arc in trajectory.arcs[:-1]], places, side="left")
-    parts = [
-        np.column_stack(
-            [places[owner == count], *(trajectory.evaluate(arc, n, o, places[owner == count]) for n, o in columns)]
-        )
-        for count, arc in enumerate(trajectory.arcs)
-    ]
-    return np.concatenate(parts)
+    shared = trajectory.by_arc(np.linspace(trajectory.start, trajectory.end, TABLE_ROWS))
+    return np.concatenate(
+        [np.column_stack([some, *(arc.evaluate(name, order, some) for name, order in columns)]) for arc, some in shared]
+    )
 
 
 def _unless_thin(plot: Plot) -> Plot:

@@ -3,15 +3,17 @@
 from __future__ import annotations
 
 import numpy as np
-from numpy.polynomial import legendre
 
 from solvers.curve import Array
-from web.trajectory import Arc, Trajectory
+from web.trajectory import Arc, Trajectory, values
 
 MOST_POINTS = 5_000
 POINTS_PER_DEGREE = 5
 LEAST_BENT = 25
 """Points of an interval that is no straight line."""
+
+UNSEEN = 1e-7
+"""A coefficient below this share of the largest one cannot be seen."""
 
 SEEN_JUMP = 1e-6
 """A jump below this share of the function's range is not drawn."""
@@ -23,62 +25,56 @@ def series(trajectory: Trajectory, name: str, derivative: int = 0, most: int = M
     A jump gives two values at one place, so it is drawn as a riser; where an arc lacks the function a NaN lifts the
     pen.
     """
-    places: list[Array] = []
-    values: list[Array] = []
     share = most // len(trajectory.arcs)
-    for arc in trajectory.arcs:
-        some, heights = _arc(trajectory, arc, name, derivative, share)
-        places.append(some)
-        values.append(heights)
-    return np.concatenate(places), np.concatenate(values)
+    parts = [_arc(arc, arc.coefficients(name, derivative), share) for arc in trajectory.arcs]
+    return np.concatenate([places for places, _ in parts]), np.concatenate([heights for _, heights in parts])
 
 
 def jumps(trajectory: Trajectory, name: str, derivative: int = 0) -> tuple[tuple[float, float, float], ...]:
-    """(place, value before, value after) wherever the function jumps visibly."""
+    """(place, value before, value after) at every break where both sides have the function, however small."""
     found: list[tuple[float, float, float]] = []
-    low, high = np.inf, -np.inf
     before = np.nan
     for arc in trajectory.arcs:
-        pieces = trajectory.pieces(arc, name, derivative)
-        if not pieces:
+        coefficients = arc.coefficients(name, derivative)
+        if coefficients is None:
             before = np.nan
-        for left, piece in zip(arc.curve.breaks[:-1], pieces, strict=bool(pieces)):
-            after, end = (float(value) for value in legendre.legval(np.array([-1.0, 1.0]), piece))
-            low, high = min(low, after, end), max(high, after, end)
-            if np.isfinite(before):
-                found.append((float(left), before, after))
-            before = end
-    return tuple(jump for jump in found if abs(jump[2] - jump[1]) > SEEN_JUMP * (high - low))
+            continue
+        signs = np.where(np.arange(len(coefficients)) % 2, -1.0, 1.0)  # Legendre polynomials at -1; at 1 all are 1
+        lefts, rights = signs @ coefficients, coefficients.sum(axis=0)
+        earlier = np.concatenate([[before], rights[:-1]])
+        found += zip(arc.breaks[:-1].tolist(), earlier.tolist(), lefts.tolist(), strict=True)
+        before = rights[-1]
+    return tuple(jump for jump in found if np.isfinite(jump[1]) and jump[1] != jump[2])
 
 
-def _arc(trajectory: Trajectory, arc: Arc, name: str, derivative: int, most: int) -> tuple[Array, Array]:
-    pieces = trajectory.pieces(arc, name, derivative)
-    if not pieces:
+def _arc(arc: Arc, coefficients: Array | None, most: int) -> tuple[Array, Array]:
+    if coefficients is None:
         return np.array([arc.start, arc.end]), np.full(2, np.nan)
-    if 2 * len(pieces) > most:
-        places = np.linspace(arc.start, arc.end, most)
-        return places, trajectory.evaluate(arc, name, derivative, places)
-    budget = most // len(pieces)
-    all_places: list[Array] = []
-    all_values: list[Array] = []
-    for left, right, piece in zip(arc.curve.breaks[:-1], arc.curve.breaks[1:], pieces, strict=True):
-        local = np.linspace(-1, 1, min(_points(piece), budget))
-        all_places.append(np.asarray(left + (right - left) * (local + 1) / 2, dtype=float))
-        all_values.append(np.asarray(legendre.legval(local, piece), dtype=float))
-    return _joined(all_places, all_values)
+    intervals = coefficients.shape[1]
+    if 2 * intervals > most:  # a mesh finer than the picture: some of its intervals, two points each
+        shown = np.unique(np.linspace(0, intervals - 1, most // 2).astype(int))
+        counts = np.full(len(shown), 2)
+    else:
+        shown = np.arange(intervals)
+        counts = np.minimum(_points(coefficients), most // intervals)
+    owner = np.repeat(shown, counts)
+    rank = np.arange(counts.sum()) - np.repeat(np.cumsum(counts) - counts, counts)
+    local = 2 * rank / np.repeat(counts - 1, counts) - 1
+    places, heights = arc.places(local, owner), values(local, coefficients, owner)
+    return _without_doubles(places, heights, np.cumsum(counts)[:-1])
 
 
-def _points(piece: Array) -> int:
-    """Two for a straight line, more for what bends; coefficients that no eye could see do not count."""
-    degree = len(legendre.legtrim(piece, 1e-7 * float(np.max(np.abs(piece), initial=0.0)))) - 1
-    return 2 if degree < 2 else max(LEAST_BENT, POINTS_PER_DEGREE * degree + 1)
+def _points(coefficients: Array) -> Array:
+    """How many points each interval needs: two for a straight line, more for what bends."""
+    size = np.abs(coefficients)
+    seen = size > UNSEEN * size.max(axis=0)
+    degrees = len(size) - 1 - np.argmax(seen[::-1], axis=0)
+    return np.where(degrees < 2, 2, np.maximum(LEAST_BENT, POINTS_PER_DEGREE * degrees + 1))
 
 
-def _joined(places: list[Array], values: list[Array]) -> tuple[Array, Array]:
-    """All intervals in a row; the doubled point at a break is kept only where the function jumps."""
-    across, up = np.concatenate(places), np.concatenate(values)
-    visible = SEEN_JUMP * float(np.ptp(up)) if len(up) else 0.0
-    doubled = np.zeros(len(across), dtype=bool)
-    starts = np.cumsum([len(some) for some in places])[:-1]
-    doubled[starts] = np.abs(up[starts] - up[starts - 1]) <= visible
-    return across[~doubled], up[~doubled]
+def _without_doubles(places: Array, heights: Array, starts: Array) -> tuple[Array, Array]:
+    """The doubled point at a break is kept only where the function jumps."""
+    visible = SEEN_JUMP * float(np.ptp(heights))
+    doubled = np.zeros(len(places), dtype=bool)
+    doubled[starts] = np.abs(heights[starts] - heights[starts - 1]) <= visible
+    return places[~doubled], heights[~doubled]

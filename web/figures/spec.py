@@ -10,7 +10,10 @@ import json
 import math
 from typing import Any
 
+import numpy as np
+
 from solvers.curve import Array
+from web.display import LEAST_PLAIN, MOST_PLAIN
 from web.figures.plot import Plot
 from web.figures.ticks import decades, power_of_ten
 
@@ -34,7 +37,8 @@ def spec(plot: Plot) -> dict[str, Any]:
         }
         for trace in plot.traces
     ]
-    across, up = _axis(plot.across), _axis(plot.up)
+    left, right, low, high = plot.extent()
+    across, up = _axis(plot.across, left, right), _axis(plot.up, low, high)
     if plot.logarithmic:
         up |= _powers(plot)
     elif plot.from_zero:
@@ -58,13 +62,18 @@ def data_block(plot: Plot) -> str:
     return text.replace("<", "\\u003c").replace(">", "\\u003e").replace("&", "\\u0026")
 
 
-def _axis(label: str) -> dict[str, Any]:
-    """An axis with its title.
+def _axis(label: str, low: float, high: float) -> dict[str, Any]:
+    """An axis with its title; numbers of a usual size are written out.
 
     Plotly raises exponents by an inline style, which the content security policy refuses: so they are written `1e-9`.
     """
-    text = _escaped(label)
-    return {"title": {"text": text}, "zeroline": False, "exponentformat": "e", "hoverformat": ".6~g"}
+    usual = max(abs(low), abs(high)) < MOST_PLAIN and high - low > LEAST_PLAIN
+    return {
+        "title": {"text": _escaped(label)},
+        "zeroline": False,
+        "exponentformat": "none" if usual else "e",
+        "hoverformat": ".6~g",
+    }
 
 
 def _powers(plot: Plot) -> dict[str, Any]:
@@ -76,7 +85,10 @@ def _powers(plot: Plot) -> dict[str, Any]:
 
 
 def _numbers(numbers: Array) -> list[float | None]:
-    return [float(f"{value:.{DIGITS}g}") if math.isfinite(value) else None for value in numbers.tolist()]
+    size = np.abs(numbers)
+    power = np.floor(np.log10(size, where=np.isfinite(size) & (size > 0), out=np.zeros_like(size)))
+    scale = 10.0 ** np.clip(DIGITS - 1 - power, -300, 300)
+    return [value if math.isfinite(value) else None for value in (np.round(numbers * scale) / scale).tolist()]
 
 
 def _escaped(text: str) -> str:

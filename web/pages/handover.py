@@ -6,12 +6,16 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
+import numpy as np
+
+from solvers.curve import Array
 from web import display, links
 from web.tables import FILE_FORMATS, Choice, TableError
 from web.trajectory import read_trajectory
 from web.unit_text import bracketed
 
 PREVIEW_ROWS = 12
+DUST = 1e-13
 
 Pairs = tuple[tuple[str, str], ...]
 Rows = tuple[tuple[str, ...], ...]
@@ -46,8 +50,9 @@ def preview_of(result: Mapping[str, Any], run_id: str, choice: Choice) -> Previe
         query = {}
     else:
         query = choice.query()
-    cells = [tuple(display.number(value, 8) for value in row) for row in made.rows[:PREVIEW_ROWS].tolist()]
-    last = tuple(display.number(value, 8) for value in made.rows[-1].tolist())
+    shown = _without_dust(made.rows)
+    cells = [tuple(display.number(value, 8) for value in row) for row in shown[:PREVIEW_ROWS].tolist()]
+    last = tuple(display.number(value, 8) for value in shown[-1].tolist())
     if made.arcs:
         cells = [(arc, *row) for arc, row in zip(made.arcs, cells, strict=False)]
         last = (made.arcs[-1], *last)
@@ -63,6 +68,12 @@ def preview_of(result: Mapping[str, Any], run_id: str, choice: Choice) -> Previe
         step_unit=f"in {display.unit(made.columns[0].unit)}" if made.columns[0].unit else "",
         example=_example(result),
     )
+
+
+def _without_dust(rows: Array) -> Array:
+    """For the eye only: what is lost in the rounding of its column is shown as 0.  The files keep every digit."""
+    size = np.nanmax(np.abs(rows), axis=0, initial=0.0)
+    return np.where(np.abs(rows) < DUST * size, 0.0, rows)
 
 
 def _example(result: Mapping[str, Any]) -> str:

@@ -6,19 +6,21 @@ import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from difflib import get_close_matches
+from functools import cache
 from typing import Any
 
 import numpy as np
 from numpy.polynomial import legendre
+from numpy.typing import NDArray
 
 from solvers.curve import Array
 from web.caution import CAUTION
+from web.extremes import HIGHEST_DERIVATIVE
 from web.trajectory import Arc, Trajectory, read_trajectory
 from web.unit_text import bracketed
 
 MOST_ROWS = 200_000
 MOST_CELLS = 2_000_000
-HIGHEST_DERIVATIVE = 3
 SHORTEST_LAST_STEP = 1e-6
 """A last step shorter than this share of a step is rounding, and is joined to the one before."""
 
@@ -102,8 +104,7 @@ def table(
             "too-many-rows",
         )
     numbers = [
-        np.column_stack([some, *(trajectory.evaluate(arc, name, order, some) for name, order in chosen)])
-        for arc, some in places
+        np.column_stack([some, *(arc.evaluate(name, order, some) for name, order in chosen)]) for arc, some in places
     ]
     return Table(
         title=str((result.get("problem") or {}).get("title") or "Curve"),
@@ -141,16 +142,20 @@ def stepped_places(start: float, end: float, step: float) -> Array:
 
 def nodes(arc: Arc) -> Array:
     """The ends of every interval and, between them, the Lobatto points of its highest degree."""
-    pieces = zip(*arc.curve.functions.values(), strict=True)
-    breaks = arc.curve.breaks
-    places = [breaks[:1]]
-    for left, right, interval in zip(breaks[:-1], breaks[1:], pieces, strict=True):
-        degree = max(len(piece) for piece in interval) - 1
-        inner = _inner_lobatto(degree)
-        places += [left + (right - left) * (inner + 1) / 2, np.array([right])]
+    degrees = np.max([_degrees(coefficients) for coefficients in arc.functions.values()], axis=0)
+    places = [arc.breaks[:1]]
+    for interval, degree in enumerate(degrees.tolist()):
+        places += [arc.places(_inner_lobatto(degree), np.array(interval)), arc.breaks[interval + 1 : interval + 2]]
     return np.concatenate(places)
 
 
+def _degrees(coefficients: Array) -> NDArray[np.intp]:
+    """The degree of each column: where its last coefficient stands that is not zero."""
+    there = coefficients != 0
+    return np.where(there.any(axis=0), len(there) - 1 - np.argmax(there[::-1], axis=0), 0)
+
+
+@cache
 def _inner_lobatto(degree: int) -> Array:
     """The roots of the derivative of the Legendre polynomial of this degree: `degree - 1` places in (-1, 1)."""
     if degree < 2:
@@ -171,8 +176,7 @@ def _places(trajectory: Trajectory, rows: int | None, step: float | None) -> lis
     else:
         assert rows is not None
         everywhere = even_places(trajectory.start, trajectory.end, rows)
-    owner = np.searchsorted([arc.end for arc in trajectory.arcs[:-1]], everywhere, side="left")
-    return [(arc, everywhere[owner == number]) for number, arc in enumerate(trajectory.arcs)]
+    return trajectory.by_arc(everywhere)
 
 
 def _check_rows(rows: int) -> None:
@@ -203,8 +207,7 @@ def _chosen(trajectory: Trajectory, columns: Sequence[str] | None, derivatives: 
 def _column(trajectory: Trajectory, wanted: str) -> tuple[str, int]:
     name = wanted.rstrip("'")
     order = len(wanted) - len(name)
-    stored = any(wanted in arc.curve.functions for arc in trajectory.arcs)
-    if name in trajectory.names and (order <= HIGHEST_DERIVATIVE or stored):
+    if name in trajectory.names and (order <= HIGHEST_DERIVATIVE or wanted in trajectory.stored):
         return name, order
     known = [other + "'" * count for other in trajectory.names for count in range(HIGHEST_DERIVATIVE + 1)]
     if name in trajectory.names:

@@ -83,7 +83,7 @@ def test_the_nodes_determine_the_polynomials(hose):
     arc = read_trajectory(hose).arcs[0]
     places = nodes(arc)
     assert len(places) == 8 * 12 + 1 and np.all(np.diff(places) > 0)
-    assert set(arc.curve.breaks) <= set(places)
+    assert set(arc.breaks) <= set(places)
 
 
 def test_node_rows_show_both_sides_of_a_junction_and_even_rows_one(vehicle):
