@@ -45,16 +45,19 @@ def perform(
     problem = replace(problem, options=replace(problem.options, time_limit=limit))
     ready = time.perf_counter()
 
+    told = False
+
     def watch(progress: Progress) -> bool:
+        nonlocal told
         report(progress_event(progress, problem))
-        return stop()
+        told = told or stop()
+        return told
 
     # The solver leaves Python for most of its time: the symbols are found beside it and delay nobody.
     with ThreadPoolExecutor(1) as beside:
         necessary = beside.submit(with_necessary, reading, problem)
         solution = solve_problem(problem, watch)
-    stopped = solution.diagnosis is not None and solution.diagnosis.reason == "stopped"
-    state = State.STOPPED if stopped else State.FINISHED
+    state = State.STOPPED if told else State.FINISHED
     times = {"read": ready - began}
     return result_document(document, problem, solution, _complete(necessary, reading), times, id=id, state=state.value)
 

@@ -83,7 +83,7 @@ def test_the_real_solver_obeys_a_stop():
     def stop():
         return len(seen) >= 2
 
-    jobs.perform(samples.text("hose"), seen.append, stop)
+    assert jobs.perform(samples.text("hose"), seen.append, stop)["state"] == "stopped"
     assert len([event for event in seen if event["kind"] == "iteration"]) <= 3
 
 
