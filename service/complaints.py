@@ -10,6 +10,7 @@ import difflib
 from collections.abc import Iterable
 from dataclasses import dataclass
 from enum import Enum
+from itertools import islice
 
 
 class Stage(Enum):
@@ -48,9 +49,13 @@ class Refused(Exception):  # noqa: N818  what the document is; nothing went wron
         super().__init__("; ".join(complaint.message for complaint in self.complaints))
 
 
+MOST = 50
+"""Complaints in one answer."""
+
+
 def refuse(stage: Stage, complaints: Iterable[Complaint]) -> None:
-    """Raise `Refused` if there is anything to complain about."""
-    found = tuple(complaints)
+    """Raise `Refused` with the first of the complaints if there are any."""
+    found = tuple(islice(complaints, MOST))
     if found:
         raise Refused(stage, found)
 

@@ -70,9 +70,9 @@ class Measure:
 
     def times(self, other: Measure, exponent: Fraction = Fraction(1)) -> Measure:
         """The unit of a product with the other to some power."""
-        dimension = tuple(a + b * exponent for a, b in zip(self.dimension, other.dimension, strict=True))
-        symbols = merged(self.symbols + raised(other.symbols, exponent))
-        return Measure(symbols, dimension, self.factor * other.factor ** float(exponent))
+        if not other.symbols and other.dimension == PURE and other.factor == 1:
+            return self
+        return _product(self, other, exponent)
 
     def power(self, exponent: Fraction) -> Measure:
         """The unit of a power."""
@@ -110,6 +110,13 @@ class Measure:
         """Whether two symbols measure the same thing, as in mm/m: nobody can tell what a bare number would be in."""
         kinds = [dimension for _, dimension in (_meaning(name) for name, _ in self.symbols) if dimension != PURE]
         return len(set(kinds)) < len(kinds)
+
+
+@lru_cache(maxsize=4096)
+def _product(one: Measure, other: Measure, exponent: Fraction) -> Measure:
+    dimension = tuple(a + b * exponent for a, b in zip(one.dimension, other.dimension, strict=True))
+    symbols = merged(one.symbols + raised(other.symbols, exponent))
+    return Measure(symbols, dimension, one.factor * other.factor ** float(exponent))
 
 
 ONE = Measure()

@@ -9,7 +9,7 @@ from itertools import chain
 from service.assemble.counting import check
 from service.assemble.declared import Declared, read_declared
 from service.assemble.dimensions import Sort, Units
-from service.assemble.domain import undefined
+from service.assemble.domain import undefined, with_children
 from service.assemble.formulas import Formulas, Statement, parse_all
 from service.assemble.guesses import Guess, check_guess_names, read_guesses, with_guess
 from service.assemble.meaning import Meaning, understand
@@ -20,12 +20,15 @@ from service.assemble.relations import Sides, conditions, convert, says_nothing,
 from service.complaints import Complaint, Stage, refuse
 from service.spec import Document
 from service.units import Measure
-from solvers.formula.nodes import At, Call, Name, Negative, Node, Power, Product, Sum, walk
+from solvers.formula.nodes import At, Call, Name, Node, Number, children, walk
 from solvers.problem import Condition, Equation, Options, Problem, Seek, Unknown
 from solvers.units import PLAIN, Unit
 
-LARGEST_SIZE = 20_000
+LARGEST_SIZE = 10_000
 """Nodes of all formulas together."""
+
+LONGEST_TEXT = 40_000
+"""Characters of all formulas together."""
 
 
 def assemble(document: Document) -> Problem:
@@ -33,6 +36,7 @@ def assemble(document: Document) -> Problem:
 
     Raises `Refused` with all complaints of the first stage that fails: names, formulas, units, conditions, size.
     """
+    _check_length(document)
     names = declare(document)
     check_guess_names(document, names)
     formulas = parse_all(document, names)
@@ -66,6 +70,19 @@ def _statements(formulas: Formulas) -> chain[Statement]:
     return chain(formulas.dynamics, formulas.endpoints, formulas.constraints)
 
 
+def _check_length(document: Document) -> None:
+    guesses = [guess for guess in document.guess.values() if isinstance(guess, str)]
+    formulas = chain(document.where.values(), document.dynamics, document.endpoints, document.constraints, guesses)
+    length = sum(len(formula) for formula in formulas)
+    if length > LONGEST_TEXT:
+        _too_large(f"The formulas have {length:,} characters together; at most {LONGEST_TEXT:,} are solved.")
+
+
+def _too_large(message: str) -> None:
+    hint = "Name repeated parts in where, and leave out what is not needed."
+    refuse(Stage.SIZE, [Complaint("", None, "problem-too-large", message, hint)])
+
+
 def _check_size(formulas: Formulas) -> None:
     size = sum(
         1
@@ -74,9 +91,7 @@ def _check_size(formulas: Formulas) -> None:
         for _ in walk(part)
     )
     if size > LARGEST_SIZE:
-        message = f"The formulas have {size:,} parts together; at most {LARGEST_SIZE:,} are solved."
-        hint = "Name repeated parts in where, and leave out what is not needed."
-        refuse(Stage.SIZE, [Complaint("", None, "problem-too-large", message, hint)])
+        _too_large(f"The formulas have {size:,} parts together; at most {LARGEST_SIZE:,} are solved.")
 
 
 def _check_written_out(formulas: Formulas, meaning: Meaning) -> None:
@@ -194,14 +209,6 @@ class _Builder:
                 return settle(node, self.places, self.units, dict(self.declared.parameters))
             case Name(name=name) if name in self.meaning.traits and not self.meaning.traits[name].moving:
                 return self.settle(self.formulas.where[name].tree)
-            case Negative(operand=operand):
-                return replace(node, operand=self.settle(operand))
-            case Sum(terms=terms):
-                return replace(node, terms=tuple(self.settle(term) for term in terms))
-            case Product(factors=factors):
-                return replace(node, factors=tuple(self.settle(factor) for factor in factors))
-            case Power(base=base, exponent=exponent):
-                return replace(node, base=self.settle(base), exponent=self.settle(exponent))
-            case Call(arguments=arguments):
-                return replace(node, arguments=tuple(self.settle(argument) for argument in arguments))
-        return node
+            case Number() | Name():
+                return node
+        return with_children(node, [self.settle(part) for part in children(node)])

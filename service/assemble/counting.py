@@ -7,6 +7,7 @@ from collections.abc import Iterator
 from service.assemble.freedom import Structure
 from service.assemble.matching import Matching
 from service.assemble.orders import derivatives, reach_of
+from service.assemble.quoting import quoted
 from service.assemble.ranges import empty_ranges, excluded_values
 from service.assemble.values import FixedValues
 from service.complaints import Complaint, Stage, listing, refuse
@@ -34,7 +35,7 @@ def _pointless(problem: Problem) -> Iterator[Complaint]:
     reach = reach_of(problem.where)
     for line in problem.dynamics:
         if not names & {name for name, _ in derivatives([line.left, line.right], reach)}:
-            message = f"“{line.label}” says nothing about an unknown."
+            message = f"{quoted(line.label)} says nothing about an unknown."
             yield Complaint(line.pointer, None, "no-unknown", message, f"The unknowns are {listing(sorted(names))}.")
 
 
@@ -56,12 +57,13 @@ def _too_many_equations(structure: Structure) -> Iterator[Complaint]:
         together = structure.matching.too_much(index)
         equation = structure.equations[index]
         names = sorted({name for other in together for name in structure.mentions[other]} & structure.orders.keys())
-        labels = listing(f"“{structure.equations[other].label}”" for other in together)
+        labels = listing(quoted(structure.equations[other].label) for other in together)
         unknowns = f"{len(names)} unknown{'s' * (len(names) != 1)} ({listing(names)})" if names else "no unknown"
         message = f"{len(together)} equations hold everywhere for {unknowns}: {labels}."
         hint = "Leave one out, or add an unknown that makes it possible (a force, a control)."
         if not names:
-            message, hint = f"“{equation.label}” holds everywhere but is about no unknown.", "Put it into endpoints."
+            message = f"{quoted(equation.label)} holds everywhere but is about no unknown."
+            hint = "Put it into endpoints."
         yield Complaint(equation.pointer, None, "too-many-equations", message, hint)
 
 
@@ -109,11 +111,11 @@ def _too_many_conditions(problem: Problem, structure: Structure) -> Iterator[Com
     for index in matching.unmet:
         together = matching.too_much(index)
         free = {freedom for other in together for freedom in wants[other]}
-        labels = listing(f"“{conditions[other].label}”" for other in together)
+        labels = listing(quoted(conditions[other].label) for other in together)
         message = f"{len(together)} conditions for {_count(free)}: {labels}."
         hint = "Leave one of them out, or free something: an end, a parameter, a control."
         if len(together) == 1:
-            message = f"Nothing can meet “{conditions[index].label}”: there is nothing free in it."
+            message = f"Nothing can meet {quoted(conditions[index].label)}: there is nothing free in it."
         yield Complaint(conditions[index].pointer, None, "too-many-conditions", message, hint)
 
 

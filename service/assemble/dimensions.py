@@ -9,6 +9,7 @@ from fractions import Fraction
 
 from service.assemble.domain import Values, literal, value_of
 from service.assemble.formulas import Formula
+from service.assemble.quoting import quoted
 from service.complaints import Complaint
 from service.units import ONE, PURE, Measure
 from solvers.formula.nodes import At, Call, Name, Negative, Node, Number, Power, Product, Sum, walk
@@ -103,7 +104,7 @@ class Units:
         except (ArithmeticError, ValueError, LookupError):
             if base.measure.dimension == PURE:
                 return Sort(ONE, checked)
-            message = f"“{text(node.base)}” is {base.told}: only a fixed number can be its exponent."
+            message = f"{quoted(node.base)} is {base.told}: only a fixed number can be its exponent."
             hint = "Divide the base by a constant of the same unit."
             self.complaints.append(formula.complaint(node.exponent.span, "unit-exponent", message, hint))
             return UNCHECKED
@@ -148,7 +149,7 @@ class Units:
         if same:
             return self.angle(part if second.bare else node, first, second, formula)
         if first.checked and second.checked:
-            message = f"“{text(node)[:60]}” is {first.told} and “{text(part)[:60]}” is {second.told}."
+            message = f"{quoted(node)} is {first.told} and {quoted(part)} is {second.told}."
             hint = f"Both have to be of one kind, for instance {first.measure.text}."
             if second.bare and literal(part):
                 value = text(part)
@@ -158,7 +159,7 @@ class Units:
         if math.isclose(first.measure.factor, second.measure.factor, rel_tol=1e-12):
             return False
         message = (
-            f"“{text(node)[:60]}” is {first.told}, “{text(part)[:60]}” is {second.told}, and some names in them "
+            f"{quoted(node)} is {first.told}, {quoted(part)} is {second.told}, and some names in them "
             "have no unit: nobody can tell which size is meant."
         )
         hint = f"Give a unit to {_plain_names(self, node, part)}, or to nothing at all."
@@ -175,7 +176,7 @@ class Units:
         if measured.measure.factor == 1:
             return False
         name = symbols[0][0]
-        message = f"The number “{text(part)}” stands beside a quantity in {name}."
+        message = f"The number {quoted(part)} stands beside a quantity in {name}."
         hint = f'Give it a unit: a constant such as "c": "{text(part)[:20]} {name}".'
         self.complaints.append(formula.complaint(part.span, "bare-number", message, hint))
         return True
@@ -185,7 +186,7 @@ class Units:
         if sort.measure.dimension == PURE:
             return
         if sort.checked:
-            message = f"“{text(node)[:60]}” is {sort.told}; {what} has to be a pure number or an angle."
+            message = f"{quoted(node)} is {sort.told}; {what} has to be a pure number or an angle."
             hint = f"Divide it by a constant in {sort.measure.text}."
             self.complaints.append(formula.complaint(node.span, "unit-clash", message, hint))
         elif not math.isclose(sort.measure.factor, 1.0, rel_tol=1e-12):
@@ -199,7 +200,7 @@ class Units:
         if sort.bare or sort.zero or not (sort.checked and by.checked):
             return
         if sort.measure.dimension != by.measure.dimension:
-            message = f"The place “{text(place)}” is {sort.told}, {self.independent} is {by.told}."
+            message = f"The place {quoted(place)} is {sort.told}, {self.independent} is {by.told}."
             hint = f"Name a place in {by.measure.text}."
             self.complaints.append(formula.complaint(place.span, "unit-clash", message, hint))
 

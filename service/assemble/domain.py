@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator, Mapping
+from collections.abc import Mapping, Sequence
+from dataclasses import replace
 
 from service.assemble.formulas import Formula
+from service.assemble.quoting import quoted
 from service.complaints import Complaint
 from solvers.formula.evaluate import REAL, evaluate
-from solvers.formula.nodes import At, Call, Name, Node, Number, Power, Product, Relation, children, walk
-from solvers.formula.printer import text
+from solvers.formula.nodes import At, Call, Name, Negative, Node, Number, Power, Product, Relation, Sum, children, walk
 
 Values = Mapping[str, float]
 """Constants by name, in SI."""
@@ -23,6 +24,22 @@ def value_of(node: Node, constants: Values) -> float:
     return float(value)
 
 
+def with_children(node: Node, parts: Sequence[Node]) -> Node:
+    """The node with other parts, in reading order."""
+    match node:
+        case Negative():
+            return replace(node, operand=parts[0])
+        case Sum():
+            return replace(node, terms=tuple(parts))
+        case Product():
+            return replace(node, factors=tuple(parts))
+        case Power():
+            return replace(node, base=parts[0], exponent=parts[1])
+        case Call():
+            return replace(node, arguments=tuple(parts))
+    return node
+
+
 def literal(node: Node) -> bool:
     """Whether a tree holds numbers only (and pi)."""
     return all(
@@ -30,51 +47,54 @@ def literal(node: Node) -> bool:
     ) and not any(isinstance(part, Call) and part.function == "integral" for part in walk(node))
 
 
-def undefined(formula: Formula, constants: Values) -> Iterator[Complaint]:
+def undefined(formula: Formula, constants: Values) -> list[Complaint]:
     """The smallest parts of a formula that have no value whatever the curve is: `1/0`, `sqrt(-1)`."""
+    walk_through = _Walk(formula, constants)
     tree = formula.tree
     for part in tree.sides if isinstance(tree, Relation) else (tree,):
-        yield from _parts(formula, part, constants)
+        walk_through.value(part)
+    return walk_through.complaints
 
 
-def _parts(formula: Formula, node: Node, constants: Values) -> Iterator[Complaint]:
-    inner = [found for part in children(node) for found in _parts(formula, part, constants)]
-    if inner:
-        yield from inner
-        return
-    if isinstance(node, Product):
-        for factor, over in zip(node.factors, node.over, strict=True):
-            if over and _zero(factor, constants):
-                message = f"Division by zero: “{text(factor)}” is 0."
-                yield formula.complaint(factor.span, "undefined", message, "Divide by something else.")
-                return
-    if isinstance(node, Power) and _zero(node.base, constants) and _negative(node.exponent, constants):
-        message = f"“{text(node)}” is a division by zero."
-        yield formula.complaint(node.span, "undefined", message, "Use a positive exponent.")
-        return
-    if isinstance(node, Number | Name | At) or (isinstance(node, Call) and node.function == "integral"):
-        return
-    try:
-        value_of(node, constants)
-    except (ArithmeticError, ValueError) as error:
-        reason = "too large" if isinstance(error, OverflowError) else "no real number is its value"
-        message = f"“{text(node)[:60]}” is not defined: {reason}."
-        yield formula.complaint(node.span, "undefined", message, "Change the numbers or constants in it.")
-    except LookupError:
-        return  # depends on the curve: nothing to say before solving
+class _Walk:
+    """Evaluates what it can, bottom up, each part once."""
 
+    def __init__(self, formula: Formula, constants: Values) -> None:
+        self.formula = formula
+        self.constants = constants
+        self.complaints: list[Complaint] = []
 
-def _zero(node: Node, constants: Values) -> bool:
-    return _given(node, constants) == 0
+    def value(self, node: Node) -> float | None:
+        """The value of a part, None where it depends on the curve or has none."""
+        if isinstance(node, At):
+            return None
+        parts = [self.value(part) for part in children(node)]
+        if self.divides_by_zero(node, parts):
+            return None
+        given = [part for part in parts if part is not None]
+        if len(given) < len(parts) or (isinstance(node, Call) and node.function == "integral"):
+            return None
+        numbers = [Number(part, "") for part in given]
+        try:
+            return value_of(with_children(node, numbers), self.constants)
+        except LookupError:
+            return None
+        except (ArithmeticError, ValueError) as error:
+            reason = "too large" if isinstance(error, OverflowError) else "no real number is its value"
+            self.complain(node, f"{quoted(node)} is not defined: {reason}.", "Change the numbers or constants in it.")
+            return None
 
+    def divides_by_zero(self, node: Node, parts: Sequence[float | None]) -> bool:
+        """Complain (and return True) about a zero below the line, also where the rest depends on the curve."""
+        if isinstance(node, Product):
+            for factor, over, value in zip(node.factors, node.over, parts, strict=True):
+                if over and value == 0:
+                    self.complain(factor, f"Division by zero: {quoted(factor)} is 0.", "Divide by something else.")
+                    return True
+        if isinstance(node, Power) and parts[0] == 0 and parts[1] is not None and parts[1] < 0:
+            self.complain(node, f"{quoted(node)} is a division by zero.", "Use a positive exponent.")
+            return True
+        return False
 
-def _negative(node: Node, constants: Values) -> bool:
-    value = _given(node, constants)
-    return value is not None and value < 0
-
-
-def _given(node: Node, constants: Values) -> float | None:
-    try:
-        return value_of(node, constants)
-    except (ArithmeticError, ValueError, LookupError):
-        return None
+    def complain(self, node: Node, message: str, hint: str) -> None:
+        self.complaints.append(self.formula.complaint(node.span, "undefined", message, hint))

@@ -8,6 +8,7 @@ from contextlib import suppress
 
 from service.assemble.domain import value_of
 from service.assemble.linear import Variable, linear
+from service.assemble.quoting import quoted
 from service.assemble.values import FixedValues
 from service.complaints import Complaint, listing, pointer
 from solvers.formula.evaluate import REAL, evaluate
@@ -119,7 +120,7 @@ def _limit(condition: Condition, index: int | None, evaluation: _Evaluation) -> 
         return
     place = "" if index is None else f" at {evaluation.problem.places[index].label}"
     by = values.told_by(set(used))
-    message = f"“{condition.label}” cannot hold{place} with {listing(by)}."
+    message = f"{quoted(condition.label)} cannot hold{place} with {listing(by)}."
     yield Complaint(condition.pointer, None, "excluded", message, "Change the condition, or the values at the places.")
 
 
@@ -148,7 +149,8 @@ def empty_ranges(problem: Problem, constants: Mapping[str, float]) -> Iterator[C
         except (ArithmeticError, ValueError, LookupError):
             continue
         if not condition.equality and condition.lower is not None and condition.upper is not None and lower >= upper:
-            message = f"The limits in “{condition.label}” leave {'one value only' if lower == upper else 'no value'}."
+            left = "one value only" if lower == upper else "no value"
+            message = f"The limits in {quoted(condition.label)} leave {left}."
             hint = "Write an equality with =." if lower == upper else "Swap the limits."
             yield Complaint(condition.pointer, None, "empty-range", message, hint)
             continue
@@ -161,8 +163,9 @@ def empty_ranges(problem: Problem, constants: Mapping[str, float]) -> Iterator[C
         low, high = sorted(((lower - form.constant) / scale, (upper - form.constant) / scale))
         before = ranges.get(key)
         if before is not None and not (_inside(max(low, before[0]), -math.inf, min(high, before[1]))):
-            message = f"“{condition.label}” leaves no value within {before[2]}."
+            message = f"{quoted(condition.label)} leaves no value within {before[2]}."
             yield Complaint(condition.pointer, None, "empty-range", message, "Change one of the limits.")
             continue
         both = (low, high) if before is None else (max(low, before[0]), min(high, before[1]))
-        ranges[key] = (*both, f"“{condition.label}”" if before is None else f"{before[2]} and “{condition.label}”")
+        told = quoted(condition.label)
+        ranges[key] = (*both, told if before is None else f"{before[2]} and {told}")

@@ -10,6 +10,7 @@ from service.assemble.dimensions import Sort, Units, leader
 from service.assemble.domain import literal, value_of
 from service.assemble.formulas import Formula, Statement
 from service.assemble.meaning import Meaning
+from service.assemble.quoting import quoted
 from service.complaints import Complaint
 from service.units import PURE, Measure
 from solvers.formula.nodes import Name, Node, Number, Product, Span, Sum, walk
@@ -53,13 +54,13 @@ def scaled(node: Node, lead: Sort, formula: Formula, units: Units) -> Node:
     if measure.factor == 1:
         return node
     if measure.ambiguous:
-        message = f"The number “{text(node)}” would be in {measure.text}, the unit of the other side: hardly meant."
+        message = f"The number {quoted(node)} would be in {measure.text}, the unit of the other side: hardly meant."
         unit = measure.text if measure.dimension == PURE else measure.coherent.text
         hint = f'Give it a unit: a constant such as "c": "{text(node)[:20]} {unit}".'
         units.complaints.append(formula.complaint(node.span, "bare-number", message, hint))
         return node
     if measure.dimension == PURE and any(isinstance(part, Name) and part.name == "pi" for part in walk(node)):
-        message = f"“{text(node)}” would be in {measure.text}, the unit of the other side: with pi hardly meant."
+        message = f"{quoted(node)} would be in {measure.text}, the unit of the other side: with pi hardly meant."
         hint = f"Write it in {measure.text}, or give a constant in rad."
         units.complaints.append(formula.complaint(node.span, "bare-number", message, hint))
         return node
@@ -80,7 +81,7 @@ def says_nothing(statement: Statement, meaning: Meaning) -> Iterator[Complaint]:
     """Given numbers side by side: true or false whatever the curve is."""
     for left, right in pairwise(statement.tree.sides):
         if meaning.of(left, right).fixed:
-            message = f"“{text(left)}” and “{text(right)}” are both given numbers: this says nothing about the curve."
+            message = f"{quoted(left)} and {quoted(right)} are both given numbers: this says nothing about the curve."
             span = Span(left.span.start, right.span.end)
             yield statement.complaint(span, "says-nothing", message, "Leave it out, or compare with an unknown.")
 

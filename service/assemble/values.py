@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from service.assemble.linear import Form, System, Variable, linear
+from service.assemble.quoting import quoted
 from service.complaints import Complaint, listing
 from solvers.formula.nodes import At, Name, Node
 from solvers.problem import Condition, Problem
@@ -55,7 +56,7 @@ class FixedValues:
     def told_by(self, variables: set[Variable]) -> list[str]:
         """The conditions, as the user wrote them, that fix some variables."""
         return [
-            f"“{self.equalities[index].label}”"
+            quoted(self.equalities[index].label)
             for index in sorted({index for variable in variables for index in self.fixed[variable][1]})
         ]
 
@@ -63,16 +64,16 @@ class FixedValues:
         """Equalities that repeat or contradict others."""
         for conflict in self.system.conflicts:
             condition = self.equalities[conflict.condition]
-            others = listing(f"“{self.equalities[index].label}”" for index in conflict.others)
+            others = listing(quoted(self.equalities[index].label) for index in conflict.others)
             if not others:
-                message, hint = f"“{condition.label}” says nothing about the curve.", "Leave it out."
+                message, hint = f"{quoted(condition.label)} says nothing about the curve.", "Leave it out."
                 code = "contradiction" if conflict.contradicts else "repetition"
                 if conflict.contradicts:
-                    message = f"“{condition.label}” can never hold."
+                    message = f"{quoted(condition.label)} can never hold."
             elif conflict.contradicts:
-                code, message = "contradiction", f"“{condition.label}” contradicts {others}."
+                code, message = "contradiction", f"{quoted(condition.label)} contradicts {others}."
                 hint = "Leave one of them out, or change its number."
             else:
-                code, message = "repetition", f"“{condition.label}” follows from {others} already."
+                code, message = "repetition", f"{quoted(condition.label)} follows from {others} already."
                 hint = "Leave it out."
             yield Complaint(condition.pointer, None, code, message, hint)

@@ -36,7 +36,8 @@ def read(body: bytes) -> Document:
     try:
         return Document.of(source)
     except ValidationError as error:
-        raise Refused(Stage.SCHEMA, complaints_of(error, source)) from None
+        complaints = complaints_of(error, source)
+    raise Refused(Stage.SCHEMA, complaints)
 
 
 def _not_yet(source: dict[str, Any]) -> list[Complaint]:

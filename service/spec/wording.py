@@ -8,7 +8,7 @@ from typing import Any
 from pydantic import BaseModel, ValidationError
 from pydantic_core import ErrorDetails
 
-from service.complaints import Complaint, closest, listing, pointer
+from service.complaints import MOST, Complaint, closest, listing, pointer
 from service.spec.model import Document, FunctionalPart, IndependentPart, ParameterPart, SolvePart, UnknownPart
 
 _KINDS = {
@@ -22,9 +22,9 @@ _LIMITS = {"ge": "at least", "gt": "more than", "le": "at most", "lt": "less tha
 
 
 def complaints_of(error: ValidationError, source: Any) -> list[Complaint]:
-    """One complaint per place, in the order of the document."""
+    """One complaint per place, for the first findings."""
     places: dict[str, list[ErrorDetails]] = {}
-    for detail in error.errors(include_url=False, include_context=True):
+    for detail in error.errors(include_url=False, include_context=True)[:MOST]:
         places.setdefault(_place(detail, source), []).append(detail)
     return [
         _complaint(place, details)

@@ -54,7 +54,8 @@ def _long_documents():
     yield Entry("not in UTF-8", '{"title": "Größe"}'.encode("latin-1"), "json", "not-utf-8", "")
     yield Entry("UTF-16", '{"format": 1}'.encode("utf-16"), "json", "not-utf-8", "")
     for name, patch, pointer in (
-        ("30 long formulas", {"where": {f"w{n}": much for n in range(30)}}, ""),
+        ("20 long formulas", {"where": {f"w{n}": much for n in range(20)}}, ""),
+        ("60 KB of formulas", {"constraints": [much + " <= 1"] * 34}, ""),
         ("abbreviations that double", {"where": doubling, "endpoints": ["d59 = 1"]}, "/where"),
     ):
         body = json.dumps(merged(BASES["plain"], patch)).encode()

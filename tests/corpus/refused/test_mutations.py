@@ -61,7 +61,7 @@ def mutated(draw):
     document = draw(st.sampled_from(SEEDS))
     for _ in range(draw(st.integers(1, 3))):
         path = draw(st.sampled_from(list(_paths(document))))
-        document = _edited(document, path, draw(VALUE), draw(st.sampled_from(["replace", "replace", "remove", "double"])))
+        document = _edited(document, path, draw(VALUE), draw(st.sampled_from(["replace", "remove", "double"])))
     return document
 
 
