@@ -1,0 +1,169 @@
+"""The page of a result: verdict and value first, nothing claimed beyond the checks, complete for every sort of end."""
+
+from __future__ import annotations
+
+import copy
+import re
+from html.parser import HTMLParser
+
+import pytest
+
+from web.caution import CAUTION
+from web.pages.progress import progress_page
+from web.pages.result import result_page
+from web.render import render
+from web.verdicts import verdict_sentence
+
+BASE = "http://bench.example:8000/"
+
+
+def page(document, **query):
+    return result_page(document, base_url=BASE, query=query)
+
+
+class Outline(HTMLParser):
+    """Ids, headings and unclosed elements of a page."""
+
+    VOID = frozenset(("meta", "link", "br", "hr", "input", "img", "path", "circle"))
+
+    def __init__(self, text):
+        super().__init__()
+        self.ids, self.headings, self.open, self.labelled = [], [], [], []
+        self.feed(text)
+
+    def handle_starttag(self, tag, attributes):
+        given = dict(attributes)
+        self.ids += [given["id"]] if "id" in given else []
+        self.labelled += given.get("aria-labelledby", "").split()
+        self.headings += [int(tag[1])] if re.fullmatch(r"h[1-6]", tag) else []
+        if tag not in self.VOID:
+            self.open.append(tag)
+
+    def handle_endtag(self, tag):
+        if tag not in self.VOID:
+            assert self.open.pop() == tag
+
+
+@pytest.mark.parametrize("name", ["hose", "stage", "vehicle", "infeasible", "out_of_time"])
+def test_every_page_is_well_formed_with_unique_ids_and_headings_in_order(name, request):
+    outline = Outline(render(page(request.getfixturevalue(name))))
+    assert outline.open == []
+    assert len(set(outline.ids)) == len(outline.ids)
+    assert set(outline.labelled) <= set(outline.ids)
+    assert outline.headings.count(1) == 1
+    assert all(after <= before + 1 for before, after in zip(outline.headings, outline.headings[1:], strict=False))
+
+
+def test_verdict_and_value_come_before_everything_else(hose):
+    text = render(page(hose))
+    order = [
+        text.index(part) for part in ("local minimum", "5.912845592 ± 4", 'id="curve"', 'id="checks"', 'id="table"')
+    ]
+    assert order == sorted(order)
+    assert "4·10<sup>−9</sup>" in text
+    assert CAUTION in text
+
+
+def test_no_bound_is_shown_where_none_is_known(out_of_time):
+    made = page(out_of_time)
+    assert "±" not in made.value and "no bound on its error" in made.value_about
+    assert made.diagnosis.heading == "The time limit ended the search"
+    assert made.main_figures  # the best curve so far
+
+
+def test_a_value_is_called_least_only_where_that_was_shown(hose):
+    assert page(hose).value_about.startswith("Least value")
+    for verdict in ("stationary", "not verified", "best found", "not a minimum"):
+        assert page(hose | {"verdict": verdict}).value_about.startswith("Value of")
+
+
+@pytest.mark.parametrize("verdict", ["stationary", "not verified", "best found", "not a minimum", "infeasible", None])
+def test_weak_verdicts_never_claim_an_optimum(verdict):
+    sentence = verdict_sentence(verdict, [{"name": "motion", "status": "failed"}])
+    assert "conditions hold" not in sentence and "No neighbouring curve" not in sentence
+    assert ("motion" in sentence) == (verdict in ("not verified", "not a minimum"))
+
+
+def test_a_diagnosis_says_the_reason_first_and_lists_the_findings(infeasible):
+    made = page(infeasible)
+    assert made.diagnosis.findings[0][:2] == ("integral(sqrt(1 + y'^2)) = 2.9", "0.127\N{NO-BREAK SPACE}m")
+    assert made.diagnosis.findings[1][2] == "x = 3\N{NO-BREAK SPACE}m, y"
+    assert made.preview is None and made.value == "" and not made.main_figures
+
+
+def test_a_run_that_crashed_shows_its_problem_and_reason():
+    bare = {
+        "id": "abc",
+        "state": "failed",
+        "problem": {"title": "Hose"},
+        "diagnosis": {"reason": "crash", "sentence": "died 3 times, signal 11", "findings": []},
+    }
+    text = render(page(bare))
+    assert "The solver broke off" in text and "died 3 times" in text and "failed" in text
+
+
+def test_checks_say_their_outcome_in_words_with_figure_and_place(hose):
+    made = page(hose)
+    assert made.checks_tally == "Of 4 checks 2 passed, 1 failed, 1 does not apply."
+    first = made.checks[0]
+    assert (first.status, first.figure, first.threshold) == ("passed", "2.1·10⁻¹¹", "1·10⁻⁶")
+    assert first.where == "x = 3\N{NO-BREAK SPACE}m, y(3) = 2.4"
+
+
+def test_prices_are_read_with_their_sign(hose):
+    (condition, _, effect), *_ = page(hose).prices
+    assert condition == "integral(sqrt(1 + y'^2)) = 4.2" and effect == "raising the limit raises the value"
+    falling = copy.deepcopy(hose)
+    falling["multipliers"]["prices"][0]["price"] *= -1
+    assert page(falling).prices[0][2] == "raising the limit lowers the value"
+
+
+def test_the_chosen_table_is_shown_and_its_files_have_the_same_choice(hose):
+    made = page(hose, step="0.5", derivatives="1").preview
+    assert made.headings == ("x [m]", "y [m]", "y'")
+    assert [row[0] for row in made.rows] == ["0", "0.5", "1", "1.5", "2", "2.5", "3"]
+    assert made.last == () and made.total == "7" and made.error == ""
+    assert dict(made.files)["CSV"].endswith("/hose-0001/table.csv?step=0.5&derivatives=1")
+
+
+def test_a_choice_that_cannot_be_made_is_said_and_the_nodes_are_shown(hose):
+    made = page(hose, rows="7", step="0.5").preview
+    assert made.error.startswith("Both a number of rows and a step are given.")
+    assert made.total == "97" and "?" not in dict(made.files)["CSV"]
+    assert page(hose, rows="many").preview.error.startswith("rows: 'many' is no whole number.")
+
+
+def test_dust_is_shown_as_zero_but_kept_in_the_files(hose):
+    hose["curve"]["arcs"][0]["functions"]["y'"][0] = [1e-18]
+    rows = page(hose, columns="y'", rows="9").preview.rows
+    assert rows[0][1] == "0"
+
+
+def test_the_problem_can_be_solved_again_from_the_page(hose):
+    made = page(hose)
+    assert made.permalink == "http://bench.example:8000/runs/hose-0001"
+    assert "integral(sqrt(1 + y'^2)) = 4.2" in made.curl and "/api/v1/runs" in made.curl
+    assert hose["problem_hash"] in made.citation
+    assert 'href="/compose?run=hose-0001"' in render(made)
+
+
+def test_hostile_texts_of_a_document_stay_text(hose):
+    hostile = "<img src=x onerror=alert(1)>"
+    hose["problem"]["title"] = hostile
+    hose["notes"] = [hostile]
+    hose["checks"][0]["sentence"] = hostile
+    hose["multipliers"]["prices"][0]["condition"] = hostile
+    hose["curve"]["independent"]["name"] = hostile
+    assert "<img" not in render(page(hose))
+
+
+def test_the_page_of_a_run_on_its_way_works_without_script():
+    made = progress_page(
+        {"id": "abc", "state": "waiting", "title": "Hose"},
+        {"independent": {"name": "x", "unit": "m"}, "solve": {"time_limit": 90}},
+    )
+    text = render(made)
+    assert '<noscript><meta http-equiv="refresh" content="3"></noscript>' in text
+    assert 'method="post" action="/runs/abc/stop"' in text
+    assert "Waiting for a free worker." in text and "1 min 30 s" in text and "along x [m]" in text
+    assert Outline(text).open == []
