@@ -15,19 +15,18 @@ from __future__ import annotations
 import base64
 import binascii
 import json
-import sqlite3
 import threading
 import time
 import zlib
 from collections.abc import Iterator, Mapping, Sequence
 from contextlib import contextmanager, nullcontext
 from dataclasses import fields
-from pathlib import Path
 from typing import Any
 
 import sqlalchemy as sql
 from sqlalchemy.engine import Connection, Row
 
+from service.database import open_database, translated
 from service.run import (
     CursorError,
     Figures,
@@ -37,7 +36,6 @@ from service.run import (
     Run,
     State,
     StoreError,
-    StoreFullError,
 )
 from service.schema import documents, results, runs, upgrade
 
@@ -66,13 +64,11 @@ class Store:
 
     def __init__(self, url: str) -> None:
         self._sqlite = url.startswith("sqlite")
-        if self._sqlite and (path := sql.make_url(url).database):
-            Path(path).parent.mkdir(mode=0o700, parents=True, exist_ok=True)
-        self._engine = _engine(url)
+        self._engine = open_database(url)
         self._reader = self._engine.execution_options(reads_only=True)
         # SQLite has one writer: within a process a lock is fairer and faster than its busy waiting.
         self._turn = threading.Lock() if self._sqlite else nullcontext()
-        with _translated():
+        with translated():
             upgrade(self._engine)
 
     def close(self) -> None:
@@ -274,13 +270,13 @@ class Store:
 
     @contextmanager
     def _read(self) -> Iterator[Connection]:
-        with _translated(), self._reader.connect() as connection:
+        with translated(), self._reader.connect() as connection:
             yield connection
 
     @contextmanager
     def _write(self) -> Iterator[Connection]:
         """A transaction that is on disk when the block is left."""
-        with _translated(), self._turn, self._engine.begin() as connection:
+        with translated(), self._turn, self._engine.begin() as connection:
             yield connection
 
 
@@ -327,39 +323,3 @@ def _read_cursor(text: str) -> tuple[float, str]:
         return float(created), str(id)
     except (ValueError, TypeError, binascii.Error) as error:
         raise CursorError("not a cursor of this list") from error
-
-
-@contextmanager
-def _translated() -> Iterator[None]:
-    """Turn what the database driver raises into this module's errors."""
-    try:
-        yield
-    except sql.exc.IntegrityError:
-        raise
-    except sql.exc.DBAPIError as error:
-        full = getattr(error.orig, "sqlite_errorcode", None) == sqlite3.SQLITE_FULL
-        full = full or getattr(error.orig, "sqlstate", None) == "53100"  # PostgreSQL: disk_full
-        raise (StoreFullError if full else StoreError)(str(error.orig)) from error
-    except sql.exc.TimeoutError as error:
-        raise StoreError("all connections are in use") from error
-
-
-def _engine(url: str) -> sql.Engine:
-    if not url.startswith("sqlite"):
-        return sql.create_engine(url, pool_pre_ping=True)
-    engine = sql.create_engine(url, connect_args={"check_same_thread": False, "timeout": 10.0})
-
-    @sql.event.listens_for(engine, "connect")
-    def _configure(connection: Any, _: Any) -> None:
-        connection.isolation_level = None  # the driver must not begin transactions behind our back
-        connection.execute("PRAGMA journal_mode = WAL")
-        connection.execute("PRAGMA synchronous = FULL")
-        connection.execute("PRAGMA foreign_keys = ON")
-
-    @sql.event.listens_for(engine, "begin")
-    def _begin(connection: Connection) -> None:
-        # Take the write lock first: a read lock that turns into one fails where two do it at once.
-        if not connection.get_execution_options().get("reads_only"):
-            connection.exec_driver_sql("BEGIN IMMEDIATE")
-
-    return engine

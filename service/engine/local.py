@@ -81,8 +81,10 @@ class LocalEngine:
             self._changed.notify_all()
         for job in left:
             self._sink.ended(job, _CLOSED)
-        for thread in self._threads:
-            if thread.ident is not None:
+        for slot, thread in zip(self._slots, self._threads, strict=True):
+            if thread.ident is None:  # never started: nobody else closes its slot
+                slot.close()
+            else:
                 thread.join()
 
     def _work(self, slot: Slot) -> None:

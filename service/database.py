@@ -1,0 +1,53 @@
+"""Connections to the database: SQLite made durable, and the errors of any driver in our words."""
+
+from __future__ import annotations
+
+import sqlite3
+from collections.abc import Iterator
+from contextlib import contextmanager
+from pathlib import Path
+from typing import Any
+
+import sqlalchemy as sql
+from sqlalchemy.engine import Connection
+
+from service.run import StoreError, StoreFullError
+
+
+def open_database(url: str) -> sql.Engine:
+    """The connections to a database; the directory of an SQLite file is made, readable by its owner only."""
+    if not url.startswith("sqlite"):
+        return sql.create_engine(url, pool_pre_ping=True)
+    if path := sql.make_url(url).database:
+        Path(path).parent.mkdir(mode=0o700, parents=True, exist_ok=True)
+    engine = sql.create_engine(url, connect_args={"check_same_thread": False, "timeout": 10.0})
+
+    @sql.event.listens_for(engine, "connect")
+    def _configure(connection: Any, _: Any) -> None:
+        connection.isolation_level = None  # the driver must not begin transactions behind our back
+        connection.execute("PRAGMA journal_mode = WAL")
+        connection.execute("PRAGMA synchronous = FULL")
+        connection.execute("PRAGMA foreign_keys = ON")
+
+    @sql.event.listens_for(engine, "begin")
+    def _begin(connection: Connection) -> None:
+        # Take the write lock first: a read lock that turns into one fails where two do it at once.
+        if not connection.get_execution_options().get("reads_only"):
+            connection.exec_driver_sql("BEGIN IMMEDIATE")
+
+    return engine
+
+
+@contextmanager
+def translated() -> Iterator[None]:
+    """Turn what the database driver raises into the errors of `service.run`."""
+    try:
+        yield
+    except sql.exc.IntegrityError:
+        raise
+    except sql.exc.DBAPIError as error:
+        full = getattr(error.orig, "sqlite_errorcode", None) == sqlite3.SQLITE_FULL
+        full = full or getattr(error.orig, "sqlstate", None) == "53100"  # PostgreSQL: disk_full
+        raise (StoreFullError if full else StoreError)(str(error.orig)) from error
+    except sql.exc.TimeoutError as error:
+        raise StoreError("all connections are in use") from error
