@@ -108,3 +108,22 @@ def open_page(browser, server):
     for context in contexts:
         context.close()
     assert wrong == []
+
+
+@pytest.fixture(scope="session")
+def audit():
+    """Finds what hinders people who use a keyboard, a screen reader or strong contrast (axe-core, WCAG 2.2 A and AA).
+
+    Gives one line per finding: the rule, and the first element that breaks it.
+    """
+    axe = pytest.importorskip("axe_playwright_python.sync_playwright").Axe()
+    rules = ["wcag2a", "wcag2aa", "wcag21a", "wcag21aa", "wcag22aa", "best-practice"]
+
+    def findings(page):
+        options = {"runOnly": {"type": "tag", "values": rules}, "resultTypes": ["violations"]}
+        found = axe.run(page, options=options).response["violations"]
+        return [
+            f"{item['id']}: {item['nodes'][0]['html'][:160]} {item['nodes'][0]['failureSummary']}" for item in found
+        ]
+
+    return findings

@@ -21,6 +21,10 @@ from web.pages.reading import Reading, reading_view
 from web.pointer import at
 
 
+LONG = 26
+"""Characters of a formula whose mathematics fits beside the field."""
+
+
 @dataclass(frozen=True, slots=True)
 class Field:
     """One field with its label and what was said about it."""
@@ -34,6 +38,7 @@ class Field:
     choices: tuple[str, ...]
     complaints: tuple[Complaint, ...]
     mathml: Markup
+    long: bool  # the mathematics may be wider than its place: it scrolls, and the keyboard must reach it
     focus: bool
 
 
@@ -203,5 +208,6 @@ def _field(column: Column, name: str, draft: Draft, by_field: Mapping[str, Seque
         choices=column.choices,
         complaints=tuple(by_field.get(name, ())),
         mathml=understood(value) if column.kind is Kind.FORMULA else Markup(""),
+        long=len(value) > LONG,
         focus=name == draft.focus,
     )
