@@ -79,6 +79,11 @@ class Measure:
         return Measure().times(self, exponent)
 
     @property
+    def computable(self) -> bool:
+        """Whether numbers in this unit stay within the range of double precision."""
+        return 1e-100 < self.factor < 1e100
+
+    @property
     def text(self) -> str:
         """As one writes it: `kg*m/s^2`, or `1` for a pure number."""
         return write_symbols(self.symbols) or "1"
@@ -116,7 +121,11 @@ class Measure:
 def _product(one: Measure, other: Measure, exponent: Fraction) -> Measure:
     dimension = tuple(a + b * exponent for a, b in zip(one.dimension, other.dimension, strict=True))
     symbols = merged(one.symbols + raised(other.symbols, exponent))
-    return Measure(symbols, dimension, one.factor * other.factor ** float(exponent))
+    try:
+        factor = one.factor * other.factor ** float(exponent)
+    except OverflowError:
+        factor = math.inf
+    return Measure(symbols, dimension, factor)
 
 
 ONE = Measure()
@@ -128,11 +137,8 @@ def parse_unit(text: str) -> Measure:
     total = Measure()
     for name, exponent in read_symbols(text):
         factor, dimension = _meaning(name)
-        try:
-            total = total.times(Measure(((name, Fraction(1)),), dimension, factor), exponent)
-        except (OverflowError, ZeroDivisionError):
-            total = Measure(factor=math.inf)
-        if not 1e-200 < total.factor < 1e200:
+        total = total.times(Measure(((name, Fraction(1)),), dimension, factor), exponent)
+        if not total.computable:
             raise UnitTextError(f"the unit “{text}” is beyond the range of numbers", "choose smaller powers")
     return total
 

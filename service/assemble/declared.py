@@ -62,20 +62,30 @@ def read_declared(document: Document, names: Names) -> Declared:
     refuse(Stage.UNITS, complaints)
 
     bounds: dict[str, tuple[float, float]] = {}
+    out_of_range: list[Complaint] = []
     for member, table in (("parameters", document.parameters), ("unknowns", document.unknowns)):
         for name, part in table.items():
-            lower, upper = part.within
-            place = pointer(member, name, "within")
-            complaints += _bounds(place, lower, upper)
-            factor = units[names.written[name]].factor
-            low = -math.inf if lower is None else lower * factor
-            bounds[names.written[name]] = (low, math.inf if upper is None else upper * factor)
+            place, factor = pointer(member, name, "within"), units[names.written[name]].factor
+            complaints += _bounds(place, *part.within)
+            out_of_range += [beyond(place) for bound in part.within if bound and not math.isfinite(bound * factor)]
+            lower, upper = (bound if bound is None else bound * factor for bound in part.within)
+            bounds[names.written[name]] = (
+                -math.inf if lower is None else lower,
+                math.inf if upper is None else upper,
+            )
+    refuse(Stage.UNITS, out_of_range)
     refuse(Stage.CONDITIONS, complaints)
     parameters = {
         spelling: Parameter(spelling, *bounds[spelling], guess=None, unit=units[spelling])
         for spelling in (names.written[name] for name in document.parameters)
     }
     return Declared(sorts, units, constants, parameters, bounds)
+
+
+def beyond(place: str) -> Complaint:
+    """A number that is too large in SI units."""
+    message = "This number is beyond the range of numbers in SI units."
+    return Complaint(place, None, "number-range", message, "Choose a smaller number or unit.")
 
 
 def _bounds(place: str, lower: float | None, upper: float | None) -> list[Complaint]:

@@ -63,6 +63,14 @@ class Units:
 
     def sort(self, node: Node, formula: Formula) -> Sort:
         """The sort of a tree; after a clash the rest goes on unchecked."""
+        sort = self._sort(node, formula)
+        if sort.measure.computable:
+            return sort
+        message = f"{quoted(node)} is {sort.told}: beyond the range of numbers."
+        self.complaints.append(formula.complaint(node.span, "unit-range", message, "Choose other units or powers."))
+        return UNCHECKED
+
+    def _sort(self, node: Node, formula: Formula) -> Sort:
         match node:
             case Number(value=value):
                 return Sort(ONE, bare=True, zero=value == 0)

@@ -23,10 +23,11 @@ class Expression:
     tree: Node
     text: str
     pointer: str
+    written: bool = True  # False where the document has a number: it has no characters to mark
 
     def complaint(self, span: Span, code: str, message: str, hint: str) -> Complaint:
         """A finding at these characters of the formula."""
-        return Complaint(self.pointer, (span.start, span.end), code, message, hint)
+        return Complaint(self.pointer, (span.start, span.end) if self.written else None, code, message, hint)
 
 
 @dataclass(frozen=True, slots=True)
@@ -79,9 +80,8 @@ def parse_all(document: Document, names: Names) -> Formulas:
 
     def expression(text: str | float, *place: str | int) -> Expression:
         if isinstance(text, float):
-            shown = f"{text:.17g}" if text != round(text) or abs(text) > 1e15 else str(round(text))
-            shown = repr(text) if float(shown) == text and len(repr(text)) < len(shown) else shown
-            return Expression(Number(text, shown), shown, pointer(*place))
+            shown = repr(text).removesuffix(".0")
+            return Expression(Number(text, shown), shown, pointer(*place), written=False)
         return Expression(_read(parse_expression, text, Number(0.0, "0"), place, complaints), text, pointer(*place))
 
     def statements(member: str, texts: tuple[str, ...]) -> tuple[Statement, ...]:

@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import replace
 from itertools import pairwise
 
-from service.assemble.declared import Declared
+from service.assemble.declared import Declared, beyond
 from service.assemble.dimensions import Units
 from service.assemble.domain import literal, value_of
 from service.assemble.formulas import Formulas
@@ -52,13 +53,29 @@ def read_guesses(
         name = names.written[written]
         if isinstance(guess, tuple):
             factor = declared.units[name].factor
-            found[name] = tuple((place * by, value * factor) for place, value in guess)
+            points = tuple((place * by, value * factor) for place, value in guess)
+            if not all(math.isfinite(number) for point in points for number in point):
+                units.complaints.append(beyond(pointer("guess", written)))
+            found[name] = points
         elif name in declared.parameters:
             assert isinstance(guess, float)
-            found[name] = guess * declared.units[name].factor
+            value = guess * declared.units[name].factor
+            if not math.isfinite(value):
+                units.complaints.append(beyond(pointer("guess", written)))
+            found[name] = value
+            _check_inside(guess, written, document.parameters[written].within)
         else:
             found[name] = _formula(name, formulas, declared, units)
     return found
+
+
+def _check_inside(guess: float, name: str, within: tuple[float | None, float | None]) -> None:
+    lower, upper = within
+    if (lower is not None and guess < lower) or (upper is not None and guess > upper):
+        message = f"The guess {guess:g} lies outside of the bounds of {name}."
+        shown = " to ".join("open" if bound is None else f"{bound:g}" for bound in within)
+        complaint = Complaint(pointer("guess", name), None, "guess-outside", message, f"The bounds are {shown}.")
+        refuse(Stage.CONDITIONS, [complaint])
 
 
 def _formula(name: str, formulas: Formulas, declared: Declared, units: Units) -> Node:

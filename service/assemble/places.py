@@ -58,6 +58,8 @@ def spot_of(tree: Node, label: str, units: Units, parameters: dict[str, Paramete
     names = [part.name for part in walk(tree) if isinstance(part, Name) and part.name != "pi"]
     if all(not units.sorts[name].checked for name in names):  # numbers, in the unit of the independent variable
         value *= by.factor
+        if not math.isfinite(value):
+            raise OverflowError("beyond the range of numbers")
         if literal(tree) or by.factor != 1:
             return Spot(Place(Number(value, label), label), value, None)
     return Spot(Place(tree, label), value, None)
@@ -66,9 +68,16 @@ def spot_of(tree: Node, label: str, units: Units, parameters: dict[str, Paramete
 def find_places(formulas: Formulas, units: Units, parameters: dict[str, Parameter]) -> Places:
     """Every place in order.  Raises `Refused` (stage conditions)."""
     complaints: list[Complaint] = []
-    first, last = (spot_of(end.tree, end.text.strip(), units, parameters) for end in formulas.ends)
-    complaints += _ends(formulas, first, last, parameters)
+    ends: list[Spot] = []
+    for end in formulas.ends:
+        try:
+            ends.append(spot_of(end.tree, end.text.strip(), units, parameters))
+        except ArithmeticError:
+            message = f"The end {end.text} is beyond the range of numbers."
+            complaints.append(end.complaint(end.tree.span, "number-range", message, "Choose another unit or number."))
     refuse(Stage.CONDITIONS, complaints)
+    first, last = ends
+    refuse(Stage.CONDITIONS, _ends(formulas, first, last, parameters))
     inner: list[Spot] = []
     for formula, node in _named(formulas):
         label = text(node.place)

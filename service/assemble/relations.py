@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass, replace
 from itertools import pairwise
@@ -65,7 +66,11 @@ def scaled(node: Node, lead: Sort, formula: Formula, units: Units) -> Node:
         units.complaints.append(formula.complaint(node.span, "bare-number", message, hint))
         return node
     if literal(node):
-        return Number(value_of(node, units.constants) * measure.factor, text(node), node.span)
+        value = value_of(node, units.constants) * measure.factor
+        if not math.isfinite(value):
+            message = f"{quoted(node)} in {measure.text} is beyond the range of numbers."
+            units.complaints.append(formula.complaint(node.span, "number-range", message, "Choose another number."))
+        return Number(value, text(node), node.span)
     return Product((Number(measure.factor, repr(measure.factor), node.span), node), (False, False), node.span)
 
 

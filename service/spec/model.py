@@ -36,7 +36,7 @@ Points = Annotated[tuple[tuple[Number, Number], ...], Field(min_length=2, max_le
 class Part(BaseModel):
     """What all parts of a document have in common: they do not change, and unknown members are refused."""
 
-    model_config = ConfigDict(frozen=True, extra="forbid", strict=True, populate_by_name=True)
+    model_config = ConfigDict(frozen=True, extra="forbid", strict=True)
 
 
 class IndependentPart(Part):
