@@ -15,11 +15,17 @@ from service.run import StoreError, StoreFullError
 
 
 def open_database(url: str) -> sql.Engine:
-    """The connections to a database; the directory of an SQLite file is made, readable by its owner only."""
+    """The connections to a database; the directory of an SQLite file is made, readable by its owner only.
+
+    Raises StoreError where the directory cannot be made.
+    """
     if not url.startswith("sqlite"):
         return sql.create_engine(url, pool_pre_ping=True)
     if path := sql.make_url(url).database:
-        Path(path).parent.mkdir(mode=0o700, parents=True, exist_ok=True)
+        try:
+            Path(path).parent.mkdir(mode=0o700, parents=True, exist_ok=True)
+        except OSError as error:
+            raise StoreError(f"the directory {Path(path).parent} cannot be made: {error.strerror}") from error
     engine = sql.create_engine(url, connect_args={"check_same_thread": False, "timeout": 10.0})
 
     @sql.event.listens_for(engine, "connect")

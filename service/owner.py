@@ -7,8 +7,10 @@ import os
 import secrets
 from pathlib import Path
 
+from service.run import StoreError
 
-class DirectoryInUseError(Exception):
+
+class DirectoryInUseError(StoreError):
     """Another server works in the data directory."""
 
 

@@ -2,6 +2,7 @@
 
 StoreError                 the database cannot be used now
 +-- StoreFullError         no room on the disk: nothing was accepted or changed
++-- DirectoryInUseError    another server works in the data directory (see `service.owner`)
 IdempotencyError           the key was used with another body
 QueueFullError             too many runs are waiting
 CursorError                a list cursor that this store did not make

@@ -346,6 +346,12 @@ def test_a_broken_database_is_an_error_of_the_store(tmp_path):
         Store(f"sqlite:///{tmp_path / 'broken'}")
 
 
+def test_a_directory_that_cannot_be_made_is_an_error_of_the_store(tmp_path):
+    (tmp_path / "file").touch()
+    with pytest.raises(StoreError, match="cannot be made: Not a directory"):
+        Store(f"sqlite:///{tmp_path / 'file' / 'data' / 'runs.sqlite3'}")
+
+
 # Schema
 
 
