@@ -11,10 +11,12 @@ from dataclasses import dataclass
 from math import pi
 
 import casadi as ca
+import numpy as np
 
 from solvers.formula.evaluate import evaluate
 from solvers.formula.nodes import At, Call, Name, Node, Number, children, with_children
 from solvers.formula.printer import text
+from solvers.limits import quantity_bounds
 from solvers.lowering import Lowered, Quantity, simple_bound
 from solvers.problem import Condition, Place
 
@@ -278,3 +280,16 @@ def _places(sparsity: ca.Sparsity) -> tuple[list[int], list[int]]:
     """Column and row of every nonzero, in CasADi's order."""
     rows, columns = sparsity.get_triplet()
     return list(columns), list(rows)
+
+
+def linear_controls(compiled: Compiled) -> list[int]:
+    """Bounded controls in which everything is linear, by structure: those that switch or run singular."""
+    _, _, lower, upper = quantity_bounds(compiled)
+    n = compiled.point.states
+    own = {row for row, column in zip(compiled.point.hessian_rows, compiled.point.hessian_columns, strict=True)
+           if row == column}  # fmt: skip
+    return [
+        index
+        for index in range(compiled.point.controls)
+        if n + index not in own and np.isfinite(upper[index] - lower[index])
+    ]

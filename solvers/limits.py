@@ -61,6 +61,10 @@ def limits(compiled: Compiled, where: Layout, rows: Rows) -> tuple[Array, Array,
     for indices in (where.nodes, where.inner):
         lower[indices], upper[indices] = state_lower, state_upper
     lower[where.controls], upper[where.controls] = control_lower, control_upper
+    for held in problem.held:
+        k = compiled.lowered.controls.index((held.name, held.order))
+        inside = where.controls[where.stretch == held.stretch, k]
+        lower[inside] = upper[inside] = control_lower[k] if held.side < 0 else control_upper[k]
     for parameter, index in zip(problem.parameters, where.parameters, strict=True):
         lower[index], upper[index] = parameter.lower, parameter.upper
     for place, index in zip(problem.places, where.places, strict=True):

@@ -15,15 +15,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from solvers.limits import constants_of, interval_of
-from solvers.lowering import primed
 from solvers.problem import Condition, Seek
 from solvers.solution import Price
 from solvers.trajectory import Trajectory
 
 Array = NDArray[np.float64]
 
-NEGLIGIBLE = 1e-7
-"""Prices of inequalities below this, relative to value over size of the limit's body, are not worth a line."""
+TRACE = 1e-6
+"""Prices of inequalities below this, relative to value over size of the body, are left out."""
 
 
 def prices(path: Trajectory) -> tuple[Price, ...]:
@@ -45,8 +44,7 @@ def bound_multipliers(path: Trajectory) -> Array:
     z, constants = path.z / program.scale, list(program.compiled.constants)
     gradient = np.asarray(program.functions["grad_f"](z, constants)[1]).ravel()
     jacobian = program.functions["jac_g"](z, constants)[1]
-    pushed = np.asarray((path.row_multipliers * program.row_scale / size) @ jacobian.sparse_matrix()
-                        if hasattr(jacobian, "sparse_matrix") else _product(jacobian, path, size)).ravel()  # fmt: skip
+    pushed = jacobian.sparse().T @ (path.row_multipliers * program.row_scale / size)
     multipliers = path.bound_multipliers.copy()
     fixed = program.lower == program.upper
     multipliers[fixed] = (-(gradient + pushed) * size / program.scale)[fixed]
@@ -83,10 +81,14 @@ def _limits(path: Trajectory, multipliers: Array) -> Iterator[Price]:
     """Multipliers of limits that hold everywhere, summed over the curve: those of upper and lower limits apart."""
     program, compiled = path.program, path.program.compiled
     point, where, problem = compiled.point, program.layout, compiled.lowered.problem
-    lines = len(compiled.lowered.equalities)
+    lines, worth = len(compiled.lowered.equalities), TRACE * abs(program.value_scale)
     rows = path.row_multipliers[program.rows.pointwise : program.rows.integrals].reshape(-1, point.constraints or 1)
     for k, condition in enumerate(compiled.pointwise[lines:], start=lines):
-        yield from _sides(condition.label, condition.pointer, rows[:, k], condition.equality, _worth(path))
+        if condition.equality:
+            yield Price(condition.label, condition.pointer, float(rows[:, k].sum()))
+        else:
+            size = program.row_scale[program.rows.pointwise + k]
+            yield from _sides((condition.label,) * 2, (condition.pointer,) * 2, rows[:, k], worth / size)
     fixed = program.lower == program.upper
     free = np.where(fixed, 0.0, multipliers)
     bounded: dict[tuple[str, int], list[tuple[str, str, float, float]]] = {}
@@ -103,51 +105,35 @@ def _limits(path: Trajectory, multipliers: Array) -> Iterator[Price]:
             own = free[indices[:, column]]
             if indices is where.inner:
                 own = np.concatenate([own, free[where.nodes[nodes, column]]])
-            yield from _attributed(primed(quantity), bounded.get(quantity, []), own, path)
+            if bounded.get(quantity):
+                yield from _attributed(bounded[quantity], own, worth / program.scale[indices[0, column]])
     for parameter, index in zip(problem.parameters, where.parameters, strict=True):
         limit = (f"{parameter.name} within", f"/parameters/{parameter.name}/within", parameter.lower, parameter.upper)
-        yield from _attributed(parameter.name, [limit], free[[index]], path)
+        yield from _attributed([limit], free[[index]], worth / program.scale[index])
 
 
-def _own_nodes(path: Trajectory) -> Array:
+def _own_nodes(path: Trajectory) -> NDArray[np.int64]:
     """Nodes that are no collocation points themselves."""
     where = path.program.layout
     shared = np.isin(where.nodes[:, 0], where.inner[:, 0]) if where.nodes.shape[1] else np.ones(len(where.nodes), bool)
     return np.flatnonzero(~shared)
 
 
-def _attributed(
-    name: str, limits: list[tuple[str, str, float, float]], multipliers: Array, path: Trajectory
-) -> Iterator[Price]:
-    """Prices of the bounds of one quantity: the tightest upper and the tightest lower limit."""
+def _attributed(limits: list[tuple[str, str, float, float]], multipliers: Array, least: float) -> Iterator[Price]:
+    """Prices of the bounds of one quantity: they belong to its least upper and its greatest lower limit."""
+    above = min(limits, key=lambda limit: limit[3])
+    below = max(limits, key=lambda limit: limit[2])
+    yield from _sides((above[0], below[0]), (above[1], below[1]), multipliers, least)
+
+
+def _sides(labels: tuple[str, str], pointers: tuple[str, str], multipliers: Array, least: float) -> Iterator[Price]:
+    """Prices of an upper and a lower limit, told apart by the sign; those that do not bind are left out.
+
+    An interior point method leaves a trace of every multiplier, so only those above `least` count.
+    """
     upper, lower = float(multipliers[multipliers > 0].sum()), float(multipliers[multipliers < 0].sum())
-    worth = _worth(path)
-    finite_above = [limit for limit in limits if np.isfinite(limit[3])]
-    finite_below = [limit for limit in limits if np.isfinite(limit[2])]
-    if finite_above and upper > NEGLIGIBLE * worth / (abs(min(limit[3] for limit in finite_above)) or 1.0):
-        label, pointer, *_ = min(finite_above, key=lambda limit: limit[3])
-        yield Price(f"{label} (upper)", pointer, upper)
-    if finite_below and -lower > NEGLIGIBLE * worth / (abs(max(limit[2] for limit in finite_below)) or 1.0):
-        label, pointer, *_ = max(finite_below, key=lambda limit: limit[2])
-        yield Price(f"{label} (lower)", pointer, lower)
-    assert name
-
-
-def _sides(label: str, pointer: str, multipliers: Array, equality: bool, worth: float) -> Iterator[Price]:
-    if equality:
-        yield Price(label, pointer, float(multipliers.sum()))
-        return
-    upper, lower = float(multipliers[multipliers > 0].sum()), float(multipliers[multipliers < 0].sum())
-    if upper > 0 and upper > -1e-6 * lower:
-        yield Price(f"{label} (upper)" if lower < -1e-6 * upper else label, pointer, upper)
-    if lower < 0 and -lower > 1e-6 * upper:
-        yield Price(f"{label} (lower)" if upper > -1e-6 * lower else label, pointer, lower)
-    assert worth >= 0
-
-
-def _worth(path: Trajectory) -> float:
-    return max(abs(path.value), 1e-3 * abs(path.program.value_scale))
-
-
-def _product(jacobian: object, path: Trajectory, size: float) -> Array:
-    return np.asarray(path.row_multipliers * path.program.row_scale / size @ np.asarray(jacobian))
+    both = min(upper, -lower) > least
+    if upper > least:
+        yield Price(f"{labels[0]} (upper)" if both else labels[0], pointers[0], upper)
+    if -lower > least:
+        yield Price(f"{labels[1]} (lower)" if both else labels[1], pointers[1], lower)

@@ -117,6 +117,16 @@ class Place:
 
 
 @dataclass(frozen=True, slots=True)
+class Held:
+    """A free quantity that stays on its lower (side -1) or upper (side 1) limit along the stretch after a place."""
+
+    stretch: int
+    name: str
+    order: int
+    side: int
+
+
+@dataclass(frozen=True, slots=True)
 class Options:
     """How far to go.  `tolerance` is relative, for the curve and for the value; `points` limits the mesh."""
 
@@ -143,6 +153,7 @@ class Problem:
     endpoints: tuple[Condition, ...] = ()  # bodies use `At`, parameters, constants
     constraints: tuple[Condition, ...] = ()  # pointwise: hold everywhere
     integrals: tuple[Condition, ...] = ()  # bodies hold `Call("integral", ...)`, may hold `At` and parameters too
+    held: tuple[Held, ...] = ()  # found by the solver, never given by the user
     options: Options = field(default_factory=Options)
     independent_unit: Unit = PLAIN
     value_unit: Unit = PLAIN

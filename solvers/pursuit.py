@@ -4,14 +4,16 @@ from __future__ import annotations
 
 import time
 from collections.abc import Callable
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from enum import Enum
 from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from solvers import refinement
 from solvers.collocation import Family
+from solvers.elastic import LeastViolation, least_violation
 from solvers.functions import Compiled, compile_problem
 from solvers.guess import guesses
 from solvers.ipopt import Iterate, Minimum, Outcome, Start, minimise
@@ -19,9 +21,12 @@ from solvers.lowering import lower
 from solvers.mesh import Mesh, interval, uniform
 from solvers.problem import Problem
 from solvers.scaling import find_row_sizes, find_scales
-from solvers.solution import MeshStep, Progress, Watch
-from solvers.trajectory import Trajectory, carry, distance, trajectory
+from solvers.solution import Finding, MeshStep, Progress, Watch
+from solvers.trajectory import Trajectory, carry, distance, related, trajectory
 from solvers.transcription import Layout, Program, layout, transcribe
+from solvers.undefined import undefined_places
+
+Array = NDArray[np.float64]
 
 FIRST_INTERVALS = 8
 FIRST_DEGREE = 4
@@ -55,9 +60,12 @@ class Pursuit:
     end: End = End.FAILED
     steps: list[MeshStep] = field(default_factory=list)
     paths: list[Trajectory] = field(default_factory=list)
+    nearest: Trajectory | None = None  # the curve that violates least, where none satisfies all conditions
     last: tuple[Program, Minimum] | None = None
+    findings: tuple[Finding, ...] = ()
     value_error: float = np.inf
     curve_error: float = np.inf
+    value_met_before: bool = False
     iterations: int = 0
 
     @property
@@ -72,43 +80,69 @@ class Pursuit:
         return max(abs(path.value), 1e-3 * abs(path.program.value_scale))
 
 
-def pursue(problem: Problem, watch: Watch | None, deadline: float) -> Pursuit:
-    """Solve one form of a problem."""
+def pursue(
+    problem: Problem,
+    watch: Watch | None,
+    deadline: float,
+    *,
+    meshes: int = MESHES,
+    start: Trajectory | None = None,
+    mesh: Mesh | None = None,
+) -> Pursuit:
+    """Solve one form of a problem on at most so many meshes, from a trajectory of a related form where one is given."""
     compiled = compile_problem(lower(problem))
     pursuit = Pursuit(problem, compiled)
     minimiser = _Minimiser(pursuit, watch, deadline)
-    begun = _begin(pursuit, minimiser)
+    begun = _begin(pursuit, minimiser) if start is None else _begin_from(pursuit, minimiser, start, mesh)
     if begun is None:
         return pursuit
     program, minimum = begun
-    tolerance = problem.options.tolerance
-    for _ in range(MESHES):
-        path = trajectory(program, minimum)
+    _add(pursuit, minimiser, *begun)
+    _go_on(pursuit, minimiser, meshes - 1)
+    return pursuit
+
+
+def go_on(pursuit: Pursuit, watch: Watch | None, deadline: float) -> Pursuit:
+    """Refine a pursuit further that was stopped after a few meshes."""
+    _go_on(pursuit, _Minimiser(pursuit, watch, deadline), MESHES)
+    return pursuit
+
+
+def _go_on(pursuit: Pursuit, minimise_: _Minimiser, meshes: int) -> None:
+    """Refine and solve until the tolerance is met or something ends it."""
+    options = pursuit.problem.options
+    pursuit.end = End.SETTLED
+    for _ in range(meshes):
+        path = pursuit.paths[-1]
         found = refinement.estimate(path)
-        pursuit.paths.append(path)
-        minimiser.record(program, minimum, path.value, found.worst)
-        if len(pursuit.paths) > 1:
-            _estimate_errors(pursuit, found)
-            end = _verdict_on_meshes(pursuit, found, tolerance)
-            if end is not None:
-                pursuit.end = end
-                return pursuit
-        mesh = refinement.refine(path, found, 0.3 * tolerance)
-        if mesh == program.mesh:
-            mesh = refinement.finer(mesh)
-        mesh = _limited(mesh, program.mesh, found, problem.options.points)
+        mesh: Mesh | None = refinement.refine(path, found, 0.3 * options.tolerance)
+        if mesh == path.program.mesh:
+            mesh = refinement.finer(path.program.mesh)
+        mesh = _limited(mesh, path.program.mesh, found, options.points)
         if mesh is None:
             pursuit.end = End.POINTS
-            return pursuit
-        if time.perf_counter() + pursuit.steps[-1].seconds * 1.2 > deadline:
+            return
+        if time.perf_counter() + pursuit.steps[-1].seconds * 1.2 > minimise_.deadline:
             pursuit.end = End.TIME
-            return pursuit
-        step = _next(path, mesh, minimiser)
+            return
+        step = _next(path, mesh, minimise_)
         if step is None:
-            return pursuit
-        program, minimum = step
-    pursuit.end = End.SETTLED
-    return pursuit
+            return
+        _add(pursuit, minimise_, *step)
+        end = _settled(pursuit)
+        if end is not None:
+            pursuit.end = end
+            return
+
+
+def _add(pursuit: Pursuit, minimise_: _Minimiser, program: Program, minimum: Minimum) -> None:
+    """Take a solved mesh in: its trajectory, its errors, its sign of life."""
+    path = trajectory(program, minimum)
+    found = refinement.estimate(path)
+    pursuit.paths.append(path)
+    minimise_.record(program, minimum, path.value, found.worst)
+    if len(pursuit.paths) > 1:
+        _estimate_errors(pursuit, found)
 
 
 class _Minimiser:
@@ -123,6 +157,10 @@ class _Minimiser:
         minimum = minimise(program, start, time_limit=left, watch=self._hear(program), options=options)
         self.pursuit.last = (program, minimum)
         return minimum
+
+    def relax(self, program: Program, z: Array) -> LeastViolation:
+        """The curve that violates the conditions least."""
+        return least_violation(program, z, time_limit=self.deadline - time.perf_counter(), watch=self._hear(program))
 
     def _hear(self, program: Program) -> Callable[[Iterate], bool]:
         mesh = program.mesh
@@ -205,8 +243,7 @@ def _begin(pursuit: Pursuit, minimise_: _Minimiser) -> tuple[Program, Minimum] |
         mesh = first_mesh(stretches, FIRST_INTERVALS * (1 if attempt < 2 else 2))
         where = layout(compiled, mesh)
         for guess in guesses(compiled, where)[: 2 if attempt else 3]:
-            scales = find_scales(compiled, where, guess.z)
-            program = transcribe(compiled, mesh, scales, find_row_sizes(compiled, where, scales, guess.z))
+            program = _program(compiled, mesh, where, guess.z)
             minimum = minimise_(program, Start(guess.z / program.scale), options)
             if minimum.outcome in SOLVED:
                 return program, minimum
@@ -214,8 +251,65 @@ def _begin(pursuit: Pursuit, minimise_: _Minimiser) -> tuple[Program, Minimum] |
             if ends[-1] in (End.STOPPED, End.TIME):
                 pursuit.end = ends[-1]
                 return None
-    pursuit.end = max(set(ends), key=lambda end: (end is not End.UNDEFINED, ends.count(end)))
+    mesh = first_mesh(stretches)
+    where = layout(compiled, mesh)
+    guess = guesses(compiled, where)[0]
+    if set(ends) == {End.UNDEFINED}:
+        pursuit.end, pursuit.findings = End.UNDEFINED, undefined_places(compiled, where, guess.z)
+        return None
+    if End.UNBOUNDED in ends:
+        pursuit.end = End.UNBOUNDED
+        return None
+    return _after_least_violation(pursuit, minimise_, _program(compiled, mesh, where, guess.z), guess.z)
+
+
+def _begin_from(
+    pursuit: Pursuit, minimise_: _Minimiser, start: Trajectory, mesh: Mesh | None
+) -> tuple[Program, Minimum] | None:
+    """The first mesh, from a trajectory of a related form of the problem."""
+    mesh = mesh or first_mesh(len(pursuit.problem.places) - 1)
+    where = layout(pursuit.compiled, mesh)
+    program = _program(pursuit.compiled, mesh, where, related(start, pursuit.compiled, where))
+    z = related(start, pursuit.compiled, where) / program.scale
+    for options in ({"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 1e-3}, {}):
+        minimum = minimise_(program, Start(z), options)
+        if minimum.outcome in SOLVED:
+            return program, minimum
+        pursuit.end = _end_of(minimum)
+        if pursuit.end in (End.STOPPED, End.TIME):
+            break
     return None
+
+
+def _after_least_violation(
+    pursuit: Pursuit, minimise_: _Minimiser, program: Program, z: Array
+) -> tuple[Program, Minimum] | None:
+    """Find out whether any curve satisfies the conditions; start again from one that does."""
+    least = minimise_.relax(program, z / program.scale)
+    if least.minimum.outcome not in SOLVED:
+        pursuit.end = _end_of(least.minimum)
+        return None
+    if least.total > 1e-6:
+        pursuit.end, pursuit.findings = End.INFEASIBLE, least.findings
+        pursuit.nearest = trajectory(program, replace(least.minimum, z=least.z,
+                                     multipliers=np.zeros(program.rows.count), bound_multipliers=np.zeros(len(least.z))))  # fmt: skip
+        return None
+    minimum = minimise_(program, Start(least.z), ATTEMPTS[1])
+    if minimum.outcome in SOLVED:
+        return program, minimum
+    pursuit.end = End.UNBOUNDED if _runs_away(program, minimum) else _end_of(minimum)
+    return None
+
+
+def _runs_away(program: Program, minimum: Minimum) -> bool:
+    """Whether the value has grown beyond all sizes of the problem."""
+    return not np.isfinite(minimum.value) or minimum.value < -1e6
+
+
+def _program(compiled: Compiled, mesh: Mesh, where: Layout, z: Array) -> Program:
+    """A program whose scales come from values (SI) on its mesh."""
+    scales = find_scales(compiled, where, z)
+    return transcribe(compiled, mesh, scales, find_row_sizes(compiled, where, scales, z))
 
 
 def _end_of(minimum: Minimum) -> End:
@@ -233,8 +327,7 @@ def _next(path: Trajectory, mesh: Mesh, minimise_: _Minimiser) -> tuple[Program,
     compiled = path.program.compiled
     where: Layout = layout(compiled, mesh)
     carried = carry(path, mesh, where)
-    scales = find_scales(compiled, where, carried.z)
-    program = transcribe(compiled, mesh, scales, find_row_sizes(compiled, where, scales, carried.z))
+    program = _program(compiled, mesh, where, carried.z)
     warm = carried.onto(program)
     for start in (warm, Start(warm.z)):
         minimum = minimise_(program, start)
@@ -261,17 +354,18 @@ def _estimate_errors(pursuit: Pursuit, found: refinement.Estimate) -> None:
     pursuit.curve_error = gain * distance(now, before) + found.worst
 
 
-def _verdict_on_meshes(pursuit: Pursuit, found: refinement.Estimate, tolerance: float) -> End | None:
+def _settled(pursuit: Pursuit) -> End | None:
     """Whether to stop refining."""
-    value_met = pursuit.value_error <= tolerance * pursuit.value_size + 2 * FLOOR * abs(
-        pursuit.paths[-1].program.value_scale
-    )
-    if value_met and found.worst <= tolerance:
+    tolerance = pursuit.problem.options.tolerance
+    errors = [step.error or 0.0 for step in pursuit.steps]
+    floor = 2 * FLOOR * abs(pursuit.paths[-1].program.value_scale)
+    value_met = pursuit.value_error <= tolerance * pursuit.value_size + floor
+    if value_met and errors[-1] <= tolerance:
         return End.CONVERGED
-    recent = [step.error or 0.0 for step in pursuit.steps[-4:]]
-    stuck = len(recent) == 4 and min(recent[1:]) > 0.3 * recent[0]
-    if value_met and stuck:
+    stuck = len(errors) > 3 and min(errors[-3:]) > 0.3 * errors[-4]
+    if value_met and (stuck or (pursuit.value_met_before and pursuit.curve_error <= 100 * tolerance)):
         return End.SETTLED
+    pursuit.value_met_before = value_met
     return None
 
 

@@ -16,6 +16,7 @@ from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
 from solvers.collocation import Family
+from solvers.functions import linear_controls
 from solvers.mesh import Interval, Mesh, interval
 from solvers.trajectory import Trajectory
 
@@ -45,7 +46,11 @@ class Estimate:
 
 
 def estimate(path: Trajectory) -> Estimate:
-    """Local errors of a solved mesh."""
+    """Local errors of a solved mesh.
+
+    Controls in which all is linear are left out: along a singular arc they are determined only through the states.
+    """
+    loose = linear_controls(path.program.compiled)
     mesh = path.program.mesh
     span = path.breaks[-1] - path.breaks[0]
     widths = np.diff(path.breaks)
@@ -58,6 +63,7 @@ def estimate(path: Trajectory) -> Estimate:
         error, worst = _tail(columns)
         falls[k], bends[k] = _shape(columns[:, worst]) if columns.shape[1] else (np.inf, 0.5)
         scaled = controls / control_sizes * weight
+        scaled[:, loose] = 0.0
         control_error, control_worst = _tail(scaled)
         if control_error > error:
             error = control_error

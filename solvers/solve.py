@@ -10,19 +10,28 @@ import numpy as np
 from numpy.typing import NDArray
 
 from solvers.curve import Curve
+from solvers.diagnosis import diagnose
 from solvers.functions import compile_problem
 from solvers.gauge import Gauged, in_parametric_form
 from solvers.guess import guesses
 from solvers.lowering import lower
 from solvers.problem import Problem
-from solvers.pursuit import End, Pursuit, first_mesh, pursue
+from solvers.pursuit import End, Pursuit, first_mesh, go_on, pursue
 from solvers.regraph import regraph
 from solvers.scaling import find_scales
-from solvers.solution import Solution, Watch
+from solvers.sharpen import sharpen
+from solvers.solution import Solution, Verdict, Watch
 from solvers.trajectory import costate_curve, curve
 from solvers.transcription import layout
 
 Array = NDArray[np.float64]
+
+
+_EARLY = {End.INFEASIBLE: Verdict.INFEASIBLE, End.UNBOUNDED: Verdict.NO_OPTIMUM}
+"""Verdicts that need no curve."""
+
+SHARE = 0.6
+"""Share of the remaining time that the search for switches may take."""
 
 
 def solve(problem: Problem, watch: Watch | None = None) -> Solution:
@@ -36,7 +45,22 @@ def solve(problem: Problem, watch: Watch | None = None) -> Solution:
         pursuit = pursue(gauged.problem, watch, deadline)
         if pursuit.solved or pursuit.end in (End.STOPPED, End.TIME):
             return _solution(problem, pursuit, gauged, began)
-    return _solution(problem, pursue(problem, watch, deadline), None, began)
+    return _solution(problem, _in_given_form(problem, watch, deadline), None, began)
+
+
+def _in_given_form(problem: Problem, watch: Watch | None, deadline: float) -> Pursuit:
+    """Plain meshes first; where controls switch, then the switches as unknowns; else plain meshes to the end."""
+    pursuit = pursue(problem, watch, deadline, meshes=3)
+    if not pursuit.solved or pursuit.end in (End.CONVERGED, End.STOPPED, End.TIME):
+        return pursuit
+    now = time.perf_counter()
+    sharp = sharpen(pursuit, watch, now + SHARE * (deadline - now))
+    if sharp is not None and sharp.end in (End.CONVERGED, End.SETTLED):
+        return sharp
+    plain = go_on(pursuit, watch, deadline)
+    if sharp is not None and sharp.value_error < plain.value_error:
+        return sharp
+    return plain
 
 
 def _sizes(problem: Problem) -> dict[str, float]:
@@ -54,9 +78,12 @@ def _sizes(problem: Problem) -> dict[str, float]:
 
 def _solution(problem: Problem, pursuit: Pursuit, gauged: Gauged | None, began: float) -> Solution:
     times = {"total": time.perf_counter() - began}
+    diagnosis = diagnose(pursuit)
     if not pursuit.solved:
-        return Solution(verdict=None, meshes=tuple(pursuit.steps), iterations=pursuit.iterations, times=times,
-                        notes=(pursuit.end.value, pursuit.last[1].status if pursuit.last else ""))  # fmt: skip
+        verdict = _EARLY.get(pursuit.end)
+        nearest = None if pursuit.nearest is None or gauged is not None else curve(pursuit.nearest)
+        return Solution(verdict, curve=nearest, diagnosis=diagnosis, meshes=tuple(pursuit.steps),
+                        iterations=pursuit.iterations, times=times)  # fmt: skip
     path = pursuit.paths[-1]
     names = {p.name for p in problem.parameters}
     parameters = {p.name: float(v) for p, v in zip(pursuit.problem.parameters, path.parameters, strict=True)
@@ -77,6 +104,7 @@ def _solution(problem: Problem, pursuit: Pursuit, gauged: Gauged | None, began: 
         costates=multipliers,
         meshes=tuple(pursuit.steps),
         iterations=pursuit.iterations,
+        diagnosis=diagnosis,
         times={"total": time.perf_counter() - began},
         notes=(
             pursuit.end.value,

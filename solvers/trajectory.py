@@ -14,7 +14,9 @@ from numpy.typing import NDArray
 
 from solvers.collocation import Family
 from solvers.curve import Curve
+from solvers.functions import Compiled
 from solvers.ipopt import Minimum, Start
+from solvers.limits import constants_of, number
 from solvers.lowering import primed
 from solvers.mesh import Mesh
 from solvers.problem import Seek
@@ -213,3 +215,34 @@ def _fractions(path: Trajectory) -> tuple[Array, Array]:
     places = np.arange(len(path.places), dtype=float)
     where = path.program.layout
     return path.program.mesh.breaks(places), where.stretch + where.fractions
+
+
+def related(path: Trajectory, compiled: Compiled, where: Layout) -> Array:
+    """All variables (SI) of a layout of a related problem: other places or parameters, the same unknowns."""
+    own = path.program.compiled.lowered.problem
+    given = {p.name: float(v) for p, v in zip(own.parameters, path.parameters, strict=True)}
+    problem = compiled.lowered.problem
+    z = np.zeros(where.size)
+    for parameter, index in zip(problem.parameters, where.parameters, strict=True):
+        z[index] = given.get(parameter.name, parameter.guess or 0.0)
+    constants = constants_of(compiled)
+    for place, index in zip(problem.places, where.places, strict=True):
+        if index not in where.parameters:
+            z[index] = number(place.tree, constants)
+    places = z[where.places]
+    starts, ends = places[where.stretch], places[where.stretch + 1]
+    points = starts + where.fractions * (ends - starts)
+    first = where.first[:-1]
+    widths = np.add.reduceat(where.measures, first)
+    nodes = np.append(starts[first] + (ends - starts)[first] * _left_ends(where, widths), places[-1])
+    z[where.nodes] = _sample(path.breaks, path.state_modes(), nodes)
+    z[where.inner] = _sample(path.breaks, path.state_modes(), points)
+    z[where.controls] = _sample(path.breaks, path.control_modes(), points)
+    z[where.integrals] = path.z[path.program.layout.integrals]
+    return z
+
+
+def _left_ends(where: Layout, widths: Array) -> Array:
+    """Left ends of the intervals as fractions of their stretches."""
+    ends = np.cumsum(widths)
+    return ends - widths - where.stretch[where.first[:-1]]

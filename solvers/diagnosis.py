@@ -1,0 +1,38 @@
+"""Why there is no full result, in the terms of the problem."""
+
+from __future__ import annotations
+
+from solvers.pursuit import End, Pursuit
+from solvers.solution import Diagnosis
+
+_SENTENCES = {
+    End.TIME: "The time limit was reached before the tolerance. The best curve so far is kept; raise `solve.time_limit`, "
+    "loosen `solve.tolerance` or give a guess.",
+    End.POINTS: "The limit on points was reached before the tolerance. The best curve so far is kept; the curve may have "
+    "more corners or layers than `solve.points` allows.",
+    End.STOPPED: "The run was stopped. The best curve so far is kept.",
+    End.UNBOUNDED: "The value runs away: within the conditions it can be made better without limit, so there is no "
+    "optimum. A bound on an unknown or one more condition may be missing.",
+    End.FAILED: "No further progress was possible from any of the default guesses. A guess of your own, bounds on the "
+    "unknowns or a simpler version of the problem may help.",
+}
+
+
+def diagnose(pursuit: Pursuit) -> Diagnosis | None:
+    """The diagnosis of a pursuit that ended early; None where it converged or settled."""
+    if pursuit.end in (End.CONVERGED, End.SETTLED):
+        return None
+    findings = pursuit.findings
+    if pursuit.end is End.INFEASIBLE:
+        named = "; ".join(f"'{finding.label}'" for finding in findings[:3])
+        sentence = f"No curve satisfies all conditions together. The least that has to give: {named}."
+    elif pursuit.end is End.UNDEFINED:
+        first = findings[0] if findings else None
+        place = "" if first is None or first.place is None else f" at {first.place:.6g}"
+        named = "a formula" if first is None else f"'{first.label}'{place} ({first.note})"
+        sentence = (
+            f"A formula has no value on any of the default guesses: {named}. A guess or a bound that avoids it helps."
+        )
+    else:
+        sentence = _SENTENCES[pursuit.end]
+    return Diagnosis(pursuit.end.value, sentence, findings)

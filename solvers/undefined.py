@@ -1,0 +1,69 @@
+"""Where a formula has no value: the smallest sub-expression that fails, the place, and the values that go into it."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+import numpy as np
+from numpy.typing import NDArray
+
+from solvers.formula.evaluate import evaluate
+from solvers.formula.nodes import Name, Node, children, walk
+from solvers.formula.printer import text
+from solvers.functions import Compiled
+from solvers.guess import ARRAYS
+from solvers.limits import constants_of
+from solvers.solution import Finding
+from solvers.transcription import Layout
+
+Array = NDArray[np.float64]
+
+
+def undefined_places(compiled: Compiled, where: Layout, z: Array) -> tuple[Finding, ...]:
+    """The sub-expressions that are not finite although their parts are, on values (SI) of a mesh."""
+    lowered = compiled.lowered
+    places = z[where.places]
+    starts, ends = places[where.stretch], places[where.stretch + 1]
+    points = starts + where.fractions * (ends - starts)
+    values: dict[tuple[str, int], Array] = {(lowered.problem.independent, 0): points}
+    values |= {(name, 0): np.full_like(points, value) for name, value in constants_of(compiled).items()}
+    for parameter, index in zip(lowered.problem.parameters, where.parameters, strict=True):
+        values[parameter.name, 0] = np.full_like(points, z[index])
+    values |= {q: z[where.inner[:, k]] for k, q in enumerate(lowered.states)}
+    values |= {q: z[where.controls[:, k]] for k, q in enumerate(lowered.controls)}
+    abbreviations = dict(lowered.problem.where)
+
+    def look_up(name: str, order: int) -> Array:
+        if name in abbreviations:
+            return value_of(abbreviations[name])
+        if (name, order) not in values:
+            values[name, order] = value_of(lowered.given[name, order])
+        return values[name, order]
+
+    def value_of(tree: Node) -> Array:
+        with np.errstate(all="ignore"):
+            return np.broadcast_to(np.asarray(evaluate(tree, look_up, ARRAYS), dtype=float), points.shape)
+
+    found: dict[str, Finding] = {}
+    for tree, pointer in _formulas(compiled):
+        for node in walk(tree):
+            here = value_of(node)
+            bad = ~np.isfinite(here)
+            if not bad.any() or any(~np.isfinite(value_of(part))[bad].all() for part in children(node)):
+                continue
+            at = int(np.flatnonzero(bad)[0])
+            parts = ", ".join(f"{text(part)} = {value_of(part)[at]:.6g}" for part in children(node))
+            if not isinstance(node, Name):
+                found.setdefault(text(node), Finding(text(node), pointer, None, float(points[at]), f"with {parts}"))
+    return tuple(found.values())
+
+
+def _formulas(compiled: Compiled) -> Iterator[tuple[Node, str]]:
+    problem = compiled.lowered.problem
+    yield from ((tree, f"/where/{name}") for name, tree in problem.where)
+    for equation in problem.dynamics:
+        yield equation.left, equation.pointer
+        yield equation.right, equation.pointer
+    yield from ((condition.body, condition.pointer) for condition in problem.constraints)
+    if problem.integrand is not None:
+        yield problem.integrand, "/functional/integrand"
