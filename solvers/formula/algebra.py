@@ -13,7 +13,9 @@ from fractions import Fraction
 
 from solvers.formula.nodes import (
     NOWHERE,
+    At,
     Call,
+    Name,
     Negative,
     Node,
     Number,
@@ -22,6 +24,7 @@ from solvers.formula.nodes import (
     Sum,
     children,
     size,
+    walk,
     with_children,
 )
 
@@ -40,14 +43,14 @@ def bare(tree: Node) -> Node:
 
 def add(terms: Iterable[Node]) -> Node:
     """The sum, with like terms collected.  The trees are bare."""
-    collected: dict[Node, _Monomial] = {}
+    collected: dict[frozenset[tuple[Node, Fraction]], _Monomial] = {}
     for node in terms:
         for term in _terms(node):
-            key = term.with_coefficient(Fraction(1), False).node()
+            key = frozenset(term.factors.items())
             before = collected.get(key)
             total = term.coefficient + (before.coefficient if before else 0)
             decimal = term.decimal or (before is not None and before.decimal)
-            collected[key] = term.with_coefficient(total, decimal)
+            collected[key] = (before or term).with_coefficient(total, decimal)
     left = [term for term in collected.values() if term.coefficient]
     if not left:
         return ZERO
@@ -90,7 +93,9 @@ def factored(tree: Node) -> Node:
     """A sum with what its terms share taken out of it, where that makes it shorter."""
     if not isinstance(tree, Sum):
         return tree
-    terms = _terms(tree)
+    terms = [term for term in _terms(tree) if term.coefficient]
+    if len(terms) < 2:
+        return add([tree])
     bases = dict.fromkeys(base for term in terms for base in term.factors)
     shared = {base: min(term.factors.get(base, Fraction(0)) for term in terms) for base in bases}
     number = abs(terms[0].coefficient)
@@ -122,6 +127,8 @@ def factors_of(tree: Node) -> tuple[Node, list[tuple[Node, Fraction]]]:
 
 def rational(tree: Node) -> Fraction | None:
     """The exact value of a formula of numbers, or None."""
+    if any(isinstance(node, Name | At | Call) for node in walk(tree)):  # most often the first leaf is one
+        return None
     if isinstance(tree, Sum):
         tree = add([tree])
     if isinstance(tree, Sum):
@@ -192,6 +199,8 @@ def _monomial(factors: Iterable[tuple[Node, Fraction]]) -> _Monomial:
             case Number() if (folded := _folded(base, exponent)) is not None:
                 coefficient *= folded
                 decimal = decimal or not base.text.lstrip("-").isdigit()
+            case Sum() if whole and (number := rational(base)):
+                coefficient *= number**exponent.numerator
             case Negative(operand=operand) if whole:
                 coefficient *= (-1) ** (exponent.numerator % 2)
                 waiting.append((operand, exponent))

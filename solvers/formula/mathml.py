@@ -105,9 +105,10 @@ class _Printer:
             case Negative(operand=operand):
                 return _MINUS + self.part(operand, PRODUCT)
             case Sum(terms=terms, minus=minus):
-                signs = ["", *(f"<mo>{'−' if negative else '+'}</mo>" for negative in minus[1:])]
-                least = [SIGNED] + [PRODUCT] * (len(terms) - 1)
-                return "".join(s + self.part(t, low) for s, t, low in zip(signs, terms, least, strict=True))
+                shown = self.part(terms[0], SIGNED)
+                for term, negative in zip(terms[1:], minus[1:], strict=True):
+                    shown += f"<mo>{'−' if negative else '+'}</mo>{self.part(term, PRODUCT)}"
+                return shown
             case Product(factors=factors, over=over):
                 return self.product(factors, over)
             case Power(base=base, exponent=exponent):

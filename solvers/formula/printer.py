@@ -10,10 +10,9 @@ SUM, SIGNED, PRODUCT, POWER, ATOM = range(5)
 
 def text(tree: Node | Relation) -> str:
     """The formula as one would type it."""
-    if isinstance(tree, Relation):
-        signs = ("", *(f" {sign} " for sign in tree.signs))
-        return "".join(sign + text(side) for sign, side in zip(signs, tree.sides, strict=True))
     match tree:
+        case Relation(sides=sides, signs=signs):
+            return _joined(sides, ("", *(f" {sign} " for sign in signs)), SUM, SUM)
         case Number():
             return numeral(tree)
         case Name(name=name, order=order):
@@ -21,18 +20,23 @@ def text(tree: Node | Relation) -> str:
         case At(name=name, order=order, place=place, side=side):
             return f"{name}{chr(39) * order}({text(place)}{side})"
         case Call(function=function, arguments=arguments):
-            return f"{function}({', '.join(map(text, arguments))})"
+            return f"{function}({_joined(arguments, ('', *[', '] * (len(arguments) - 1)), SUM, SUM)})"
         case Negative(operand=operand):
             return "-" + _part(operand, PRODUCT)
         case Sum(terms=terms, minus=minus):
-            signs = ("", *(" - " if negative else " + " for negative in minus[1:]))
-            least = (SIGNED, *[PRODUCT] * (len(terms) - 1))
-            return "".join(sign + _part(term, low) for sign, term, low in zip(signs, terms, least, strict=True))
+            return _joined(terms, ("", *(" - " if negative else " + " for negative in minus[1:])), SIGNED, PRODUCT)
         case Product(factors=factors, over=over):
-            signs = ("", *("/" if divides else "*" for divides in over[1:]))
-            return "".join(sign + _part(factor, POWER) for sign, factor in zip(signs, factors, strict=True))
+            return _joined(factors, ("", *("/" if divides else "*" for divides in over[1:])), POWER, POWER)
         case Power(base=base, exponent=exponent):
             return f"{_part(base, ATOM)}^{_exponent(exponent)}"
+
+
+def _joined(parts: tuple[Node, ...], signs: tuple[str, ...], first: int, others: int) -> str:
+    """The parts with a sign before each, in parentheses where they hold together less than they must."""
+    pieces: list[str] = []  # a loop, since this recurses: a generator would double its depth
+    for sign, part in zip(signs, parts, strict=True):
+        pieces.append(sign + _part(part, others if pieces else first))
+    return "".join(pieces)
 
 
 def numeral(number: Number) -> str:

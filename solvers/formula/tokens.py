@@ -39,7 +39,6 @@ REFUSED = {
     "√": ("'√' is not used in formulas", "a square root is written sqrt(…)"),
     "∫": ("'∫' is not used in formulas", "an integral is written integral(…)"),
     "’": ("'’' is a quotation mark", "a derivative is written with the straight ' or the prime ′"),
-    "\u02b9": ("this prime is a letter", "a derivative is written with the straight ' or the prime ′"),
     "÷": ("'÷' is not a sign here", "a quotient is written with '/'"),
     "%": ("'%' is not a sign here", "write the number itself: 0.05 for 5 percent"),
     ";": ("';' is not used in formulas", "arguments are separated by ','; each condition is an entry of its own"),
@@ -57,6 +56,9 @@ _PATTERN = re.compile(
 )
 
 _PRIMES = {"'": 1, "′": 1, "″": 2, "‴": 3}
+_PRIME_LETTERS = "ʹʺʼˈ"
+"""Letters to Unicode, primes to the eye."""
+
 _LOOKALIKE = str.maketrans(
     "ΑΒΕΖΗΙΚΜΝΟΡΤΥΧοАВЕКМНОРСТХаеорсухіјѕ",
     "ABEZHIKMNOPTYXoABEKMHOPCTXaeopcyxijs",
@@ -152,7 +154,10 @@ def _check_number(written: str, text: str, span: Span) -> None:
 def _checked_name(written: str, text: str, start: int) -> str:
     name = unicodedata.normalize("NFC", written).replace("µ", "μ")
     for offset, letter in enumerate(written):
-        if letter.isdecimal() and not letter.isascii():
+        kind = "digit"
+        if letter in _PRIME_LETTERS:
+            kind, hint = "prime", "a derivative is written with the straight ' or the prime ′"
+        elif letter.isdecimal() and not letter.isascii():
             hint = f"write {unicodedata.decimal(letter)}"
         elif unicodedata.category(letter)[0] == "N" and not letter.isascii():
             digit = unicodedata.digit(letter, None)
@@ -160,7 +165,7 @@ def _checked_name(written: str, text: str, start: int) -> str:
         else:
             continue
         raise FormulaError(
-            f"'{letter}' is not a digit that formulas know",
+            f"'{letter}' is not a {kind} that formulas know",
             text=text, span=Span(start + offset, start + offset + 1), code="character", hint=hint,
         )  # fmt: skip
     span = Span(start, start + len(written))

@@ -6,10 +6,13 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
+from solvers.formula.algebra import bare as without_spans
+from solvers.formula.derivative import derivative
 from solvers.formula.errors import FormulaError
+from solvers.formula.evaluate import evaluate
+from solvers.formula.mathml import mathml
 from solvers.formula.nodes import (
     FUNCTIONS,
-    NOWHERE,
     At,
     Call,
     Name,
@@ -18,25 +21,21 @@ from solvers.formula.nodes import (
     Power,
     Product,
     Relation,
+    Span,
     Sum,
     children,
     walk,
 )
 from solvers.formula.parser import ENDLESS, parse_either, parse_expression, parse_relation
 from solvers.formula.printer import text
-from solvers.formula.tokens import read_name
+from solvers.formula.tokens import REFUSED, read_name
 
 
 def bare(tree):
     """The tree without its spans."""
-    changes = {"span": NOWHERE}
-    for field in dataclasses.fields(tree):
-        value = getattr(tree, field.name)
-        if dataclasses.is_dataclass(value) and field.name != "span":
-            changes[field.name] = bare(value)
-        elif isinstance(value, tuple) and value and dataclasses.is_dataclass(value[0]):
-            changes[field.name] = tuple(map(bare, value))
-    return dataclasses.replace(tree, **changes)
+    if isinstance(tree, Relation):
+        return Relation(tuple(map(without_spans, tree.sides)), tree.signs)
+    return without_spans(tree)
 
 
 a, b, c = Name("a"), Name("b"), Name("c")
@@ -146,6 +145,8 @@ REFUSALS = [  # formula, code, markers, message, hint
      "a place is a number, a constant, a parameter or a formula of them"),
     ("y" + "'" * 10, "order-limit", "^^^^^^^^^^^", "10 primes on 'y'; the limit is 9", ""),
     ("x²", "character", " ^", "'²' is not a digit that formulas know", "a power is written ^2"),
+    ("yʹ", "character", " ^",
+     "'ʹ' is not a prime that formulas know", "a derivative is written with the straight ' or the prime ′"),
     ("x٣", "character", " ^", "'٣' is not a digit that formulas know", "write 3"),
     ("a\u200b", "character", " ^", "an invisible character (U+200B ZERO WIDTH SPACE) stands here", "delete it"),
     ("_a", "character", "^", "'_' is not used in formulas", "a name begins with a letter"),
@@ -170,6 +171,15 @@ def test_refuses_and_says_what_would_be_right(formula, code, markers, message, h
     assert refusal.value.code == code
 
 
+@pytest.mark.parametrize("sign", REFUSED)
+def test_signs_from_habit_are_refused_at_their_place(sign):
+    with pytest.raises(FormulaError) as refusal:
+        parse_either(f"a {sign} 1")
+    message, hint = REFUSED[sign]
+    assert (refusal.value.message, refusal.value.hint) == (message, hint)
+    assert refusal.value.span == Span(2, 2 + len(sign))
+
+
 def test_an_expression_is_no_relation_and_a_relation_no_expression():
     with pytest.raises(FormulaError) as refusal:
         parse_expression("(a) <= b")
@@ -189,6 +199,20 @@ def test_limits_answer_with_limit_and_figure():
         with pytest.raises(FormulaError, match="more than 100 deep; the limit is 100") as refusal:
             parse_either(deep)
         assert refusal.value.code == "depth-limit"
+
+
+@pytest.mark.parametrize(
+    ("before", "after"), [("(", "+1)*2"), ("sin(", "+1)"), ("2/(1+", ")"), ("1+2*(", ")"), ("y^", ""), ("-", "")]
+)
+def test_the_deepest_formulas_are_printed_without_running_out_of_stack(before, after):
+    tree = parse_expression(before * 100 + "y" + after * 100)
+    assert text(tree).count("y") == mathml(tree, label="").count("<mi>y</mi>") > 0
+
+
+def test_the_deepest_formula_is_derived_without_running_out_of_stack():
+    tree = parse_expression("(" * 100 + "y" + "+1)/2" * 100)
+    slope = evaluate(derivative(tree, Name("y")), {}.get, {"power": lambda base, exponent: base**exponent})
+    assert slope == pytest.approx(2.0**-100)
 
 
 def test_a_place_far_inside_a_long_formula_is_shown_with_its_surroundings():
