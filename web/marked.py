@@ -13,8 +13,11 @@ AROUND = 60
 
 @dataclass(frozen=True, slots=True)
 class Complaint:
-    """One complaint, ready to be shown.  `field` is where to go to put it right; `before`, `marked`, `after` may be
-    empty together, where the complaint is not about characters."""
+    """One complaint, ready to be shown.
+
+    `field` is where to go to put it right, `start` and `end` the characters there to select, `line` the line that they
+    are in (0: not known).  `before`, `marked` and `after` are empty together where it is not about characters.
+    """
 
     message: str
     hint: str
@@ -24,6 +27,9 @@ class Complaint:
     before: str = ""
     marked: str = ""
     after: str = ""
+    start: int = 0
+    end: int = 0
+    line: int = 0
 
 
 def complaint(given: Mapping[str, Any], *, field: str = "", text: str = "") -> Complaint:

@@ -31,6 +31,7 @@ def environment() -> Environment:
         trim_blocks=True,
         lstrip_blocks=True,
         keep_trailing_newline=True,
+        auto_reload=False,  # a page includes its parts many times over; looking at every file each time shows
     )
     made.globals["links"] = links
     made.filters["with_code"] = with_code

@@ -76,6 +76,15 @@ def test_form_and_json_show_the_same_document(open_page):
     assert field(page, "endpoints.0.formula").input_value() == "y(2) = 1"
 
 
+def test_a_complaint_leads_to_its_characters_in_the_text(open_page):
+    page = open_page("/compose?sample=hose&view=json")
+    text = field(page, "json")
+    text.fill(text.input_value().replace("y(3) = 2.4", "y(3) = = 2.4"))
+    page.locator("#summary a").click(timeout=TIMEOUT)
+    selected = page.evaluate("((t) => t.value.slice(t.selectionStart - 7, t.selectionEnd))(document.activeElement)")
+    assert selected == "y(3) = ="
+
+
 def test_rows_move_with_the_keyboard(open_page):
     page = open_page("/compose?sample=hose")
     field(page, "endpoints.1.formula").focus()

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import json
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any, ClassVar
 
 from markupsafe import Markup
@@ -14,12 +14,12 @@ from web.form.draft import FORM, JSON, Draft
 from web.form.filling import kept_back
 from web.form.reading import REST, field_of, rows
 from web.form.sections import HEAD, SECTIONS, Column, Kind, Section, Shape
+from web.form.text_place import line_of, place_of
 from web.form.understood import understood
 from web.marked import Complaint, complaint
 from web.pages.page import Page, told
 from web.pages.reading import Reading, reading_view
 from web.pointer import at
-
 
 LONG = 26
 """Characters of a formula whose mathematics fits beside the field."""
@@ -135,8 +135,19 @@ def _complaints(draft: Draft, given: Sequence[Mapping[str, Any]]) -> tuple[Compl
     found = []
     for item in given:
         field = field_of(str(item.get("pointer") or ""), draft.places) or draft.places.get("", "")
-        found.append(complaint(item, field=field, text=_concerned(draft, item, field)))
+        made = complaint(item, field=field, text=_concerned(draft, item, field))
+        found.append(_placed(made, draft.text, item) if draft.view == JSON else made)
     return (*own, *found)
+
+
+def _placed(made: Complaint, text: str, given: Mapping[str, Any]) -> Complaint:
+    """The complaint with its place in the JSON text; where that cannot be read, its span is of the text itself."""
+    span = given.get("span")
+    place = place_of(text, made.pointer, span) or (tuple(span) if span else None)
+    if place is None:
+        return made
+    start, end = place
+    return replace(made, start=start, end=end, line=line_of(text, start))
 
 
 def _concerned(draft: Draft, given: Mapping[str, Any], field: str) -> str:

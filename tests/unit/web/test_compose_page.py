@@ -41,13 +41,16 @@ def test_a_complaint_about_the_whole_document_is_listed_without_a_field():
 def test_in_the_text_view_the_formula_of_the_pointer_is_marked():
     draft = draft_from_text(json.dumps({"where": {"k": "2x"}}), "json")
     page = compose_page(draft, base_url=BASE, complaints=[complaint("/where/k", [1, 2])])
-    assert [(item.field, item.before, item.marked) for item in page.text_complaints] == [("json", "2", "x")]
+    (shown,) = page.text_complaints
+    assert (shown.field, shown.before, shown.marked, shown.line) == ("json", "2", "x", 1)
+    assert draft.text[shown.start : shown.end] == "x"
 
 
 def test_in_unreadable_text_the_place_is_marked_in_the_text():
     draft = draft_from_text('{"a": }', "json")
     page = compose_page(draft, base_url=BASE, complaints=[complaint("", [6, 7])])
-    assert (page.text_complaints[0].before, page.text_complaints[0].marked) == ('{"a": ', "}")
+    (shown,) = page.text_complaints
+    assert (shown.before, shown.marked, shown.line, shown.start) == ('{"a": ', "}", 1, 6)
 
 
 def test_hostile_text_is_escaped_wherever_it_is_shown():

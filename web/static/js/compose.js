@@ -8,6 +8,7 @@
 import { graftLive, graftSheet } from "./graft.js";
 import { post } from "./post.js";
 import { commandOfKey } from "./keys.js";
+import { range } from "./range.js";
 import { offerDraft, keepDraft } from "./draft.js";
 import "./copy.js";
 
@@ -84,6 +85,7 @@ export function enhance(form) {
     event.preventDefault();
     const folded = field.closest("details");
     if (folded) folded.open = true;
+    if (link.dataset.end) field.setSelectionRange(...range(field.value, link.dataset.start, link.dataset.end));
     field.focus();
   });
 
