@@ -2,7 +2,8 @@
 
 The Hessian of the Lagrangian must be positive on all variations that keep dynamics and active limits.  Constraints that
 couple neighbours only enter as a penalty, (J dz)^2 / e, which keeps the matrix banded in the order of the curve; the
-few that couple everything (integrals, conditions) and the free numbers stand in a border.  The triangular factors
+few that couple everything (integrals, conditions) and the free numbers stand in a border, together with the last
+interval (without it an eigenvalue problem's band would be singular at its very eigenvalue).  The triangular factors
 L D L' of that matrix count its negative directions (Sylvester), and since its leading parts belong to variations that
 vanish from some place on, the first part that has one ends at the first conjugate point (Jacobi).
 
@@ -17,6 +18,7 @@ section 16.2 (from memory).
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -56,7 +58,7 @@ class Second:
     at_limit: Flags
     forced: Flags
     long: Flags  # rows that couple the whole curve
-    border: Flags  # variables that do
+    border: Flags  # variables that do, and those of the last interval
 
 
 @dataclass(frozen=True, slots=True)
@@ -138,7 +140,9 @@ def second_order(sampler: Sampler) -> Second:
     long = np.zeros(rows.count, bool)
     long[rows.integrals :] = True
     border = np.zeros(where.size, bool)
-    border[where.places] = border[where.parameters] = border[where.integrals] = True
+    border[where.nodes[-2].min(initial=where.size) :] = True  # the last interval, places, parameters, integrals
+    if not sampler.point.states:
+        border[where.controls[where.first[-2], 0] :] = True
     return Second(hessian, _matrix(jacobian).tocsr(), metric, fixed, resting, pushed, equalities, at_limit, forced,
                   long, border)  # fmt: skip
 
@@ -154,30 +158,52 @@ def count_negative(second: Second, free: Flags, rows: Flags, shift: float) -> Co
 
     None where the factors are not to be trusted.
     """
-    inside = np.flatnonzero(free & ~second.border)
-    border = np.flatnonzero(free & second.border)
-    columns = np.concatenate([inside, border])
+    inside, border = np.flatnonzero(free & ~second.border), np.flatnonzero(free & second.border)
     near, far = np.flatnonzero(rows & ~second.long), np.flatnonzero(rows & second.long)
+    columns = np.concatenate([inside, border])
     if not len(columns):
         return Count(0, None)
-    hessian = second.hessian[columns][:, columns] + sp.diags(shift * second.metric[columns])
     local, coupling = _normal(second.jacobian[near][:, columns]), _normal(second.jacobian[far][:, columns])
-    matrix = sp.bmat([[hessian + local.T @ local / PENALTY, coupling.T],
-                      [coupling, -PENALTY * sp.eye(coupling.shape[0])]], format="csc")  # fmt: skip
-    try:
-        factors = splu(matrix, permc_spec="NATURAL", diag_pivot_thresh=0.0, options={"SymmetricMode": True})
-    except RuntimeError:  # exactly singular
+    hessian = second.hessian[columns][:, columns] + sp.diags(shift * second.metric[columns])
+    penalized = (hessian + local.T @ local / PENALTY).tocsc()
+    whole = sp.bmat([[penalized, coupling.T], [coupling, -PENALTY * sp.eye(coupling.shape[0])]], format="csc")
+    size = len(inside)
+    band, side = whole[:size][:, :size], whole[:size][:, size:].toarray()
+    corner = whole[size:][:, size:].toarray()
+    solve, negative = _factorized(band)
+    if solve is None:
         return None
-    if not np.array_equal(factors.perm_r, np.arange(matrix.shape[0])):
-        return None
-    pivots = factors.U.diagonal()
-    probe = np.cos(np.arange(matrix.shape[0]))
-    if np.abs(matrix @ factors.solve(probe) - probe).max() > 1e-4:
-        return None
-    negative = int((pivots < 0).sum()) - coupling.shape[0]
+    rest = corner - side.T @ solve(side) if side.shape[1] else corner  # Schur complement of the band
+    negative += int((np.linalg.eigvalsh((rest + rest.T) / 2) < 0).sum()) - coupling.shape[0]
     if negative <= 0:
         return Count(max(negative, 0), None)
-    return Count(negative, _direction(factors, matrix, len(columns)))
+
+    def inverse(vector: Array) -> Array:
+        """The whole matrix's inverse, by blocks."""
+        inner = solve(vector[:size])
+        outer = np.linalg.lstsq(rest, vector[size:] - side.T @ inner, rcond=None)[0] if len(rest) else vector[size:]
+        return np.concatenate([inner - solve(side @ outer), outer])
+
+    vector = np.sin(1.0 + np.arange(whole.shape[0]))
+    for _ in range(8):  # inverse iteration: towards the eigenvalue nearest to zero
+        vector = inverse(vector)
+        vector /= np.linalg.norm(vector)
+    return Count(negative, vector[: len(columns)])
+
+
+def _factorized(band: sp.csc_matrix) -> tuple[Callable[[Array], Array] | None, int]:
+    """Solver of a symmetric banded matrix and its number of negative pivots; None where pivots vanish."""
+    if band.shape[0] == 0:
+        return (lambda right: right), 0
+    try:
+        factors = splu(band, permc_spec="NATURAL", diag_pivot_thresh=0.0, options={"SymmetricMode": True})
+    except RuntimeError:  # exactly singular
+        return None, 0
+    probe = np.cos(np.arange(band.shape[0]))
+    trusted = np.array_equal(factors.perm_r, np.arange(band.shape[0]))
+    if not trusted or not np.abs(band @ factors.solve(probe) - probe).max() < 1e-4:
+        return None, 0
+    return factors.solve, int((factors.U.diagonal() < 0).sum())
 
 
 def _normal(jacobian: sp.csr_matrix) -> sp.csr_matrix:
@@ -185,15 +211,6 @@ def _normal(jacobian: sp.csr_matrix) -> sp.csr_matrix:
     length = np.sqrt(np.asarray(jacobian.multiply(jacobian).sum(axis=1)).ravel())
     kept = length > 1e-14
     return (sp.diags(1 / length[kept]) @ jacobian[kept]).tocsr()
-
-
-def _direction(factors: object, matrix: sp.csc_matrix, count: int) -> Array:
-    """A vector near the lowest end of the spectrum, by inverse iteration."""
-    vector = np.sin(1.0 + np.arange(matrix.shape[0]))
-    for _ in range(6):
-        vector = factors.solve(vector)  # type: ignore[attr-defined]
-        vector /= np.linalg.norm(vector)
-    return np.asarray(vector[:count])
 
 
 def proved(second: Second, free: Flags, rows: Flags, direction: Array) -> float:

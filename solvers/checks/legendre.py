@@ -102,7 +102,7 @@ def _active_slope(sampler: Sampler, constraint: int) -> Array:
             slope[:, column - n] = sampler.halves_slopes[:, entry] * sampler.control_sizes[column - n]
     lower, upper = interval_of(sampler.compiled.pointwise[constraint], constants_of(sampler.compiled))
     values = sampler.halves_outputs[:, output]
-    size = sampler.output_sizes()[output] or 1.0
+    size = sampler.output_sizes[output] or 1.0
     active = (values - lower <= AT_LIMIT * size) | (upper - values <= AT_LIMIT * size)
     length = np.linalg.norm(slope, axis=1, keepdims=True)
     return np.where(active[:, None] & (length > 1e-12 * size), slope / np.maximum(length, 1e-300), 0.0)

@@ -93,21 +93,14 @@ def bodies(sampler: Sampler, sample: Sample) -> Iterator[Body]:
     if point.constraints == lines:
         return
     outputs = sampler.outputs(sample)
-    sizes = sampler.output_sizes()
+    sizes = sampler.output_sizes
     constants = constants_of(sampler.compiled)
     for index, condition in enumerate(sampler.compiled.pointwise[lines:], start=n + lines):
         values = outputs[:, index]
         least, most = interval_of(condition, constants)
         largest = float(np.abs(values[np.isfinite(values)]).max(initial=0.0))
         size = max(_limit_size(least, most), largest, sizes[index]) or 1.0
-        yield Body(condition.label, values, least, most, size, holds_controls(sampler, index))
-
-
-def holds_controls(sampler: Sampler, output: int) -> bool:
-    """True where an output of the point function depends on a control."""
-    n, m = sampler.point.states, sampler.point.controls
-    pairs = zip(sampler.point.jacobian_rows, sampler.point.jacobian_columns, strict=True)
-    return any(row == output and n <= column < n + m for row, column in pairs)
+        yield Body(condition.label, values, least, most, size, sampler.holds_controls(index))
 
 
 def _limit_size(lower: float, upper: float) -> float:

@@ -83,15 +83,15 @@ def _advanced(sampler: Sampler, intervals: Indices, steps: int) -> Array:
     local = (np.arange(steps)[:, None] + _C) / steps
     controls = sampler.controls_at(np.repeat(intervals, local.size), np.tile(local.ravel(), count))
     controls = controls.reshape(count, steps, _STAGES, -1)
-    state = sampler.path.nodes[intervals].copy()
+    state: Array = sampler.path.nodes[intervals].copy()
     with np.errstate(all="ignore"):
         for step in range(steps):
             slopes = np.zeros((_STAGES, count, n))
             for stage in range(_STAGES):
-                inner = state + np.tensordot(_A[stage, :stage], slopes[:stage], 1) / steps if stage else state
+                inner = state + np.tensordot(_A[stage, :stage], slopes[:stage], 1) / steps
                 slopes[stage] = _rates(sampler, intervals, inner, controls[:, step, stage], local[step, stage])
             state = state + np.tensordot(_B, slopes, 1) / steps
-    return state
+    return np.asarray(state)
 
 
 def _rates(sampler: Sampler, intervals: Indices, states: Array, controls: Array, local: float) -> Array:
@@ -121,7 +121,7 @@ def _stiff(sampler: Sampler, interval: int, accuracy: float) -> Array | None:
 def _held(sampler: Sampler) -> tuple[float, float, int]:
     """The worst violation of a line that is an equality: figure, place, which line."""
     n, lines = sampler.point.states, len(sampler.compiled.lowered.equalities)
-    values = np.abs(sampler.halves_outputs[:, n : n + lines]) / _positive(sampler.output_sizes()[n : n + lines])
+    values = np.abs(sampler.halves_outputs[:, n : n + lines]) / _positive(sampler.output_sizes[n : n + lines])
     values = np.where(np.isfinite(values), values, 1e300)
     shares = np.abs(sampler.halves.measure / sampler.span)[:, None] * values
     per_interval = np.add.reduceat(shares, np.arange(0, len(shares), len(shares) // sampler.count), axis=0)

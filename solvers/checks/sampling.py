@@ -14,6 +14,7 @@ import numpy as np
 from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
+from solvers.checks.adjoint import Continued, continued
 from solvers.limits import quantity_bounds
 from solvers.lowering import primed
 from solvers.problem import Seek
@@ -150,13 +151,37 @@ class Sampler:
         """What each output counts in the Hamiltonian per fraction: costates, multipliers, sign of the integrand."""
         weights = np.zeros((len(sample.local), self.point.outputs))
         n, c = self.point.states, self.point.constraints
-        weights[:, :n] = self.of(self.costates, sample.interval, sample.local)
+        weights[:, :n] = self.costates_at(sample)
         if constraints and c:
             density = self.of(self.multiplier_modes, sample.interval, sample.local)
             weights[:, n : n + c] = density * (self.end - self.start)[sample.interval, None]
         weights[:, n + c : -1] = -self.path.row_multipliers[self._integral_rows]
         weights[:, -1] = self.sign
         return weights
+
+    def costates_at(self, sample: Sample) -> Array:
+        """The costates: on the grid of halves integrated anew, elsewhere as stored."""
+        if sample is self.halves:
+            return self.continued.values
+        return self.of(self.costates, sample.interval, sample.local)
+
+    @cached_property
+    def continued(self) -> Continued:
+        """The costates on the grid of halves, integrated anew from the nodes."""
+        return continued(self, HALVES)
+
+    @cached_property
+    def fixed_ends(self) -> list[tuple[bool, bool]]:
+        """For each state whether its value at the first and at the last place is given."""
+        last = len(self.problem.places) - 1
+        held = {(state, place) for state, place, condition in self.compiled.fixed if condition.equality}
+        return [((j, 0) in held, (j, last) in held) for j in range(self.point.states)]
+
+    def holds_controls(self, output: int) -> bool:
+        """True where an output of the point function depends on a control."""
+        n, m = self.point.states, self.point.controls
+        pairs = zip(self.point.jacobian_rows, self.point.jacobian_columns, strict=True)
+        return any(row == output and n <= column < n + m for row, column in pairs)
 
     @property
     def _integral_rows(self) -> slice:
@@ -183,7 +208,7 @@ class Sampler:
         n = self.point.states
         sizes = np.abs(np.vstack([self.path.nodes, self.halves.v[:, :n]])).max(axis=0, initial=0.0)
         scale = self.path.program.scale[self.path.program.layout.nodes[0]]
-        return np.where(sizes > 1e-12 * scale, sizes, scale)
+        return np.asarray(np.where(sizes > 1e-12 * scale, sizes, scale))
 
     @cached_property
     def state_extents(self) -> Array:
@@ -197,7 +222,7 @@ class Sampler:
         n, m = self.point.states, self.point.controls
         sizes = self.mean(np.abs(self.halves.v[:, n : n + m]))
         scale = self.path.program.scale[self.path.program.layout.controls[0]]
-        return np.where(sizes > 1e-9 * scale, sizes, scale)
+        return np.asarray(np.where(sizes > 1e-9 * scale, sizes, scale))
 
     @cached_property
     def input_sizes(self) -> Array:
@@ -220,6 +245,12 @@ class Sampler:
         """The size of the functional that first-order changes are compared with."""
         return float(self.power * abs(self.span))
 
+    @property
+    def program_value(self) -> float:
+        """A first size of the functional, before costates are at hand."""
+        return max(abs(self.path.value), 1e-6 * abs(self.path.program.value_scale))
+
+    @cached_property
     def output_sizes(self) -> Array:
         """For each output the mean over the curve of what its slopes make of the sizes of its inputs."""
         sizes = np.zeros(self.point.outputs)

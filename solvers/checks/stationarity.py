@@ -22,6 +22,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
+from solvers.checks.adjoint import variation
 from solvers.checks.sampling import Sampler, mapped
 from solvers.collocation import Family
 from solvers.limits import constants_of, interval_of
@@ -81,28 +82,18 @@ def control_steps(sampler: Sampler) -> Array:
 
 
 def _costates(sampler: Sampler) -> list[Finding]:
-    """For each state the sum over all intervals of the weak form's residual."""
-    n, sample, count = sampler.point.states, sampler.halves, sampler.count
+    """For each state the sum over all intervals of the jump, or of the weak form's residual where one is touched."""
+    n = sampler.point.states
     if n == 0:
         return []
-    gradient = sampler.gradient(sample, sampler.halves_slopes, sampler.weights(sample, constraints=False))
-    costates = sampler.of(sampler.costates, sample.interval, sample.local)
-    every = np.arange(count)
-    left = sampler.of(sampler.costates, every, np.zeros(count))
-    right = sampler.of(sampler.costates, every, np.ones(count))
-    before_place = np.append(np.diff(sampler.stretch) > 0, True)
-    right[:-1] = np.where(before_place[:-1, None], right[:-1], left[1:])
-    fixed = _fixed_ends(sampler)
-    edges = (sampler.path.breaks - sampler.path.breaks[0]) / sampler.span
-    share = (sample.places - sampler.path.breaks[0]) / sampler.span
-    measures = _measures(sampler)
+    found, weak = sampler.continued, _weak_residuals(sampler)
+    shares = (sampler.path.breaks[found.far] - sampler.path.breaks[0]) / sampler.span
+    inner = np.append(sampler.stretch, sampler.stretch[-1])[found.far] == sampler.stretch[np.maximum(found.far - 1, 0)]
     findings = []
     for j in range(n):
-        weight, slope = _variation(share, fixed[j])
-        terms = (weight * gradient[:, j] - slope / sampler.span * costates[:, j]) * sample.measure
-        at_edges = _variation(edges, fixed[j])[0]
-        residual = terms.reshape(count, -1).sum(axis=1) + at_edges[1:] * right[:, j] - at_edges[:-1] * left[:, j]
-        residual = _finite(np.abs(residual + _variation(measures[1], fixed[j])[0] @ measures[0][j]))
+        weight = np.where(inner, variation(shares, sampler.fixed_ends[j])[0], 0.0)
+        jumps = np.where(weight > 0, weight * found.jumps[:, j], 0.0)
+        residual = _finite(np.abs(np.where(found.kept, weak[:, j], jumps)))
         residual *= sampler.state_extents[j] / sampler.value_size
         figure, worst = float(residual.sum()), int(np.argmax(residual))
         name = sampler.state_names[j]
@@ -111,30 +102,35 @@ def _costates(sampler: Sampler) -> list[Finding]:
     return findings
 
 
-def _variation(share: Array, fixed: tuple[bool, bool]) -> tuple[Array, Array]:
-    """A smooth variation of largest value one that vanishes at fixed ends, and its slope, at shares of the range."""
-    match fixed:
-        case (True, True):
-            return 4 * share * (1 - share), 4 - 8 * share
-        case (True, False):
-            return share * (2 - share), 2 - 2 * share
-        case (False, True):
-            return 1 - share**2, -2 * share
-        case _:
-            return np.ones_like(share), np.zeros_like(share)
+def _weak_residuals(sampler: Sampler) -> Array:
+    """The weak form of the costate equations on every interval, with the stored costates (N x n)."""
+    n, sample, count = sampler.point.states, sampler.halves, sampler.count
+    costates = sampler.of(sampler.costates, sample.interval, sample.local)
+    weights = sampler.weights(sample, constraints=False)
+    weights[:, :n] = costates
+    gradient = sampler.gradient(sample, sampler.halves_slopes, weights)
+    every = np.arange(count)
+    left = sampler.of(sampler.costates, every, np.zeros(count))
+    right = sampler.of(sampler.costates, every, np.ones(count))
+    before_place = np.append(np.diff(sampler.stretch) > 0, True)
+    right[:-1] = np.where(before_place[:-1, None], right[:-1], left[1:])
+    edges = (sampler.path.breaks - sampler.path.breaks[0]) / sampler.span
+    share = (sample.places - sampler.path.breaks[0]) / sampler.span
+    put, owner, at = _measures(sampler)
+    residuals = np.empty((count, n))
+    for j, fixed in enumerate(sampler.fixed_ends):
+        weight, slope = variation(share, fixed)
+        terms = (weight * gradient[:, j] - slope / sampler.span * costates[:, j]) * sample.measure
+        ends = variation(edges, fixed)[0]
+        residuals[:, j] = terms.reshape(count, -1).sum(axis=1) + ends[1:] * right[:, j] - ends[:-1] * left[:, j]
+        residuals[:, j] += np.bincount(owner, variation(at, fixed)[0] * put[:, j], count)
+    return residuals
 
 
-def _fixed_ends(sampler: Sampler) -> list[tuple[bool, bool]]:
-    last = len(sampler.problem.places) - 1
-    held = {(state, place) for state, place, condition in sampler.compiled.fixed if condition.equality}
-    return [((j, 0) in held, (j, last) in held) for j in range(sampler.point.states)]
+def _measures(sampler: Sampler) -> tuple[Array, NDArray[np.int64], Array]:
+    """What multipliers of constraints and bounds put on each state (P x n), in which interval, at which share.
 
-
-def _measures(sampler: Sampler) -> tuple[Array, Array]:
-    """What multipliers of constraints and bounds put on each state at the points.
-
-    First n matrices (P x N) so that (weights at the P points) @ matrix sums over each interval; then the points' shares
-    of the range.  Multipliers at a place belong to the conditions there and are left out.
+    Multipliers at a place belong to the conditions there and are left out.
     """
     path, n, c = sampler.path, sampler.point.states, sampler.point.constraints
     where = path.program.layout
@@ -160,9 +156,7 @@ def _measures(sampler: Sampler) -> tuple[Array, Array]:
     put = np.vstack([put, path.bound_multipliers[where.nodes[extra + 1]].reshape(len(extra), n)])
     owner = np.concatenate([owner, extra])
     shares = np.concatenate([shares, (path.breaks[extra + 1] - path.breaks[0]) / sampler.span])
-    matrices = np.zeros((n, len(owner), sampler.count))
-    matrices[:, np.arange(len(owner)), owner] = put.T
-    return matrices, shares
+    return put, owner, shares
 
 
 def _multipliers(sampler: Sampler) -> list[Finding]:
@@ -181,7 +175,7 @@ def _multipliers(sampler: Sampler) -> list[Finding]:
         sample = sampler.sample(owner, (where.fractions - sampler.fraction[owner]) / sampler.width[owner])
         values = mapped(sampler.point.value, sample.v, sample.d)[:, n + lines : n + c]
         rows = path.row_multipliers[path.program.rows.pointwise : path.program.rows.integrals].reshape(-1, c)
-        sizes = sampler.output_sizes()[n + lines : n + c]
+        sizes = sampler.output_sizes[n + lines : n + c]
         constants = constants_of(sampler.compiled)
         for k, condition in enumerate(sampler.compiled.pointwise[lines:]):
             if not condition.equality:

@@ -1,0 +1,174 @@
+"""Costates between the nodes, integrated anew from their values at the nodes.
+
+On every interval p' = -H_x is integrated along the stored curve from the right end to the left (on the last interval,
+if its right end is fixed, from the left, since a costate may be infinite there).  What is found inside the interval
+obeys the costate equation whatever the solver did; what it lacks at the other end is the jump that a check must weigh.
+Where a constraint on states alone is touched, its multiplier is a measure: there the stored polynomials are kept, and
+the weak form of the equation takes the place of the jump.
+
+The equation is linear; three-stage Gauss steps (order six) solve it on all intervals side by side.
+Reference: Hairer, Wanner (1996), Solving Ordinary Differential Equations II, section IV.5 (from memory).
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+from numpy.typing import NDArray
+
+if TYPE_CHECKING:
+    from solvers.checks.sampling import Sampler
+
+Array = NDArray[np.float64]
+Flags = NDArray[np.bool_]
+
+TOUCHED = 1e-5
+"""Multipliers of limits on states alone, relative to the functional, that make an interval a touched one."""
+
+_ROOT = np.sqrt(15.0)
+_A = np.array([[5 / 36, 2 / 9 - _ROOT / 15, 5 / 36 - _ROOT / 30],
+               [5 / 36 + _ROOT / 24, 2 / 9, 5 / 36 - _ROOT / 24],
+               [5 / 36 + _ROOT / 30, 2 / 9 + _ROOT / 15, 5 / 36]])  # fmt: skip
+_B = np.array([5.0, 8.0, 5.0]) / 18
+_C = np.array([0.5 - _ROOT / 10, 0.5, 0.5 + _ROOT / 10])
+
+
+@dataclass(frozen=True, slots=True)
+class Continued:
+    """Costates on the grid of halves (P x n), what they lack at the far end of each interval (N x n), and where that
+    end is (N+1 breaks by number); `kept` marks the intervals where the stored polynomials stay in force."""
+
+    values: Array
+    jumps: Array
+    far: NDArray[np.int64]
+    kept: Flags
+
+
+@dataclass(frozen=True, slots=True)
+class Steps:
+    """Local places where the solution is wanted, both ends and a few between, and the stages of the steps."""
+
+    edges: Array
+    wanted: NDArray[np.int64]
+
+    @property
+    def stages(self) -> Array:
+        """Local places of the stages, step by step."""
+        return np.asarray((self.edges[:-1, None] + np.diff(self.edges)[:, None] * _C).ravel())
+
+
+def steps_through(places: Array) -> Steps:
+    """Steps that pass through local places, graded towards both ends, where coefficients may grow without bound."""
+    outer = np.concatenate([np.geomspace(places[0], places[1], 4)[1:-1], [np.sqrt(places[1] * places[2])]])
+    edges = np.sort(np.concatenate([[0.0, 1.0], outer, 1 - outer, places]))
+    return Steps(edges, np.searchsorted(edges, places))
+
+
+def integrate(steps: Steps, matrix: Array, source: Array, length: Array, start: Array, backwards: bool) -> Array:
+    """Solve p' = -(A' p + b) on N intervals: p at all edges, N x E x n.
+
+    `matrix` (N x S x n x n: slopes of rate i by state j) and `source` (N x S x n) at the S stages, `length` (N) of the
+    intervals in the independent variable, `start` (N x n) at the right end if `backwards`, else at the left.
+    """
+    count, n = start.shape
+    total = len(steps.edges)
+    values = np.empty((count, total, n))
+    matrix = matrix.reshape(count, total - 1, 3, n, n)
+    source = source.reshape(count, total - 1, 3, n)
+    order = range(total - 2, -1, -1) if backwards else range(total - 1)
+    values[:, -1 if backwards else 0] = start
+    nodes = _A if not backwards else _A[::-1, ::-1]  # the method is symmetric: backwards its stages change places
+    for k in order:
+        step = (steps.edges[k + 1] - steps.edges[k]) * length * (-1.0 if backwards else 1.0)
+        before = values[:, k + 1 if backwards else k]
+        transposed = -np.swapaxes(matrix[:, k], -1, -2)  # N x 3 x n x n
+        system = -step[:, None, None, None, None] * transposed[:, :, None] * nodes[:, :, None, None]
+        system = np.swapaxes(system, 2, 3).reshape(count, 3 * n, 3 * n) + np.eye(3 * n)
+        right = np.einsum("nsij,nj->nsi", transposed, before) - source[:, k]
+        slopes = _solved(system, right.reshape(count, 3 * n)).reshape(count, 3, n)
+        values[:, k if backwards else k + 1] = before + step[:, None] * np.einsum("s,nsi->ni", _B, slopes)
+    return values
+
+
+def _solved(system: Array, right: Array) -> Array:
+    """Solve all systems; those that hold undefined numbers have an undefined solution."""
+    good = np.isfinite(system).all(axis=(1, 2)) & np.isfinite(right).all(axis=1)
+    answer = np.full_like(right, np.nan)
+    answer[good] = np.linalg.solve(system[good], right[good][:, :, None])[:, :, 0]
+    return answer
+
+
+def continued(sampler: Sampler, places: Array) -> Continued:
+    """The costates at local places of every interval."""
+    count, n = sampler.count, sampler.point.states
+    every = np.arange(count)
+    left = sampler.of(sampler.costates, every, np.zeros(count))
+    right = sampler.of(sampler.costates, every, np.ones(count))
+    joined = np.append(np.diff(sampler.stretch) == 0, False)  # the next interval belongs to the same stretch
+    start = right.copy()
+    start[joined] = left[1:][joined[:-1]]
+    from_left = count > 1 and bool(joined[-2]) and any(fixed for _, fixed in sampler.fixed_ends)
+    if from_left:
+        start[-2] = right[-2]  # the last interval's own polynomial is of no use at its left end
+    far, kept = every.copy(), touched(sampler)
+    steps = steps_through(places)
+    sample = sampler.grid(steps.stages)
+    slopes = sampler.slopes(sample)
+    matrix = _rate_slopes(sampler, slopes, sample.interval).reshape(count, -1, n, n)
+    weights = sampler.weights(sample)
+    weights[:, :n] = 0.0
+    source = sampler.gradient(sample, slopes, weights)[:, :n].reshape(count, -1, n)
+    values = integrate(steps, matrix, source, sampler.length, start, backwards=True)
+    jumps = values[:, 0] - left
+    if from_left:
+        last = slice(count - 1, count)
+        values[last] = integrate(steps, matrix[last], source[last], sampler.length[last], right[count - 2][None, :],
+                                 backwards=False)  # fmt: skip
+        jumps[-1], far[-1] = values[-1, -1] - right[-1], count
+    inside = values[:, steps.wanted]
+    kept |= ~np.isfinite(inside).all(axis=(1, 2))
+    stored = sampler.of(sampler.costates, np.repeat(every, len(places)), np.tile(places, count))
+    inside[kept] = stored.reshape(count, -1, n)[kept]
+    return Continued(inside.reshape(-1, n), jumps, far, kept)
+
+
+def _rate_slopes(sampler: Sampler, slopes: Array, interval: NDArray[np.int64]) -> Array:
+    """Slopes of the rates by the states, per unit of the independent variable (P x n x n)."""
+    n = sampler.point.states
+    matrix = np.zeros((len(slopes), n, n))
+    for entry, (row, column) in enumerate(
+        zip(sampler.point.jacobian_rows, sampler.point.jacobian_columns, strict=True)
+    ):  # fmt: skip
+        if row < n and column < n:
+            matrix[:, row, column] = slopes[:, entry]
+    return np.asarray(matrix / (sampler.end - sampler.start)[interval, None, None])
+
+
+def variation(share: Array, fixed: tuple[bool, bool]) -> tuple[Array, Array]:
+    """A smooth variation of largest value one that vanishes at fixed ends, and its slope, at shares of the range."""
+    match fixed:
+        case (True, True):
+            return 4 * share * (1 - share), 4 - 8 * share
+        case (True, False):
+            return share * (2 - share), 2 - 2 * share
+        case (False, True):
+            return 1 - share**2, -2 * share
+        case _:
+            return np.ones_like(share), np.zeros_like(share)
+
+
+def touched(sampler: Sampler) -> Flags:
+    """The intervals where a limit on states alone is pushed against."""
+    path, n, c = sampler.path, sampler.point.states, sampler.point.constraints
+    where = path.program.layout
+    owner = np.repeat(np.arange(sampler.count), np.diff(where.first))
+    shares = (path.points - path.breaks[0]) / sampler.span
+    weights = np.column_stack([variation(shares, fixed)[0] for fixed in sampler.fixed_ends])
+    pushes = (np.abs(path.bound_multipliers[where.inner]) * weights * sampler.state_sizes).sum(axis=1)
+    if c:
+        multipliers = path.row_multipliers[path.program.rows.pointwise : path.program.rows.integrals].reshape(-1, c)
+        alone = np.array([not sampler.holds_controls(n + k) for k in range(c)])
+        pushes = pushes + np.abs(multipliers[:, alone]) @ sampler.output_sizes[n : n + c][alone]
+    return np.asarray(np.bincount(owner, pushes, sampler.count) > TOUCHED * sampler.program_value)
