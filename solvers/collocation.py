@@ -64,7 +64,7 @@ def scheme(family: Family, degree: int) -> Scheme:
     points = _radau_points(degree) if family is Family.RADAU else legendre.leggauss(degree)[0]
     support = np.concatenate([[-1.0], points])
     state_modes = np.linalg.inv(legendre.legvander(support, degree))
-    control_modes = np.linalg.inv(legendre.legvander(points, degree - 1))
+    control_modes: Array = np.linalg.inv(legendre.legvander(points, degree - 1)).astype(np.float64)
     slopes = legendre.legvander(points, degree - 1) @ legendre.legder(np.eye(degree + 1)).reshape(degree, degree + 1)
     return Scheme(
         family=family,

@@ -6,10 +6,10 @@ from solvers.pursuit import End, Pursuit
 from solvers.solution import Diagnosis
 
 _SENTENCES = {
-    End.TIME: "The time limit was reached before the tolerance. The best curve so far is kept; raise `solve.time_limit`, "
-    "loosen `solve.tolerance` or give a guess.",
-    End.POINTS: "The limit on points was reached before the tolerance. The best curve so far is kept; the curve may have "
-    "more corners or layers than `solve.points` allows.",
+    End.TIME: "The time limit was reached before the tolerance. The best curve so far is kept; raise "
+    "`solve.time_limit`, loosen `solve.tolerance` or give a guess.",
+    End.POINTS: "The limit on points was reached before the tolerance. The best curve so far is kept; the curve may "
+    "have more corners or layers than `solve.points` allows.",
     End.STOPPED: "The run was stopped. The best curve so far is kept.",
     End.UNBOUNDED: "The value runs away: within the conditions it can be made better without limit, so there is no "
     "optimum. A bound on an unknown or one more condition may be missing.",

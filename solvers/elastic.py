@@ -1,8 +1,8 @@
 """The least violation of a program: which conditions conflict, and by how much each would have to give.
 
 Every condition of the user gets one slack, the largest amount by which it is broken anywhere; the sum of the slacks,
-each relative to its condition's size, is minimised while the dynamics hold.  Where the least sum is zero the problem has
-curves after all, and one of them is found.
+each relative to its condition's size, is minimised while the dynamics hold.  Where the least sum is zero the problem
+has curves after all, and one of them is found.
 Reference: Nocedal, Wright (2006), Numerical Optimization, section 17.2 (l1 penalty, elastic mode; from memory).
 """
 
@@ -21,6 +21,7 @@ from solvers.solution import Finding
 from solvers.transcription import Program, sparse
 
 Array = NDArray[np.float64]
+Indices = NDArray[np.int64]
 
 
 @dataclass(frozen=True, slots=True)
@@ -29,8 +30,8 @@ class Group:
 
     label: str
     pointer: str
-    rows: Array
-    variables: Array
+    rows: Indices
+    variables: Indices
 
 
 @dataclass(frozen=True, slots=True)
@@ -60,7 +61,7 @@ def groups(program: Program) -> list[Group]:
         found.append(Group(condition.label, condition.pointer, none,
                            np.array([where.nodes[where.at_place[place], state]])))  # fmt: skip
 
-    def everywhere(quantity: Quantity) -> Array:
+    def everywhere(quantity: Quantity) -> Indices:
         if quantity in lowered.states:
             k = lowered.states.index(quantity)
             return np.unique(np.concatenate([where.nodes[:, k], where.inner[:, k]]))
@@ -121,12 +122,13 @@ def least_violation(
     weight_f, weight_g = ca.MX.sym("lam_f"), ca.MX.sym("lam_g", total)
     curvature = functions["hess_lag"](inside, constants, 0, ca.mtimes(on_g.T, weight_g))
     f = ca.sum1(slack)
+    slope = ca.vertcat(ca.DM.zeros(size, 1), ca.DM.ones(len(parts), 1))
     elastic = {
         "z": w,
         "c": constants,
         "f": f,
         "g": rows_only,
-        "grad_f": ca.Function("grad_f", [w, constants], [f, ca.vertcat(ca.DM.zeros(size, 1), ca.DM.ones(len(parts), 1))],
+        "grad_f": ca.Function("grad_f", [w, constants], [f, slope],
                               ["x", "p"], ["f", "grad_f_x"]),
         "jac_g": ca.Function("jac_g", [w, constants], [g, ca.horzcat(ca.mtimes(on_g, jacobian) + on_z, on_s)],
                              ["x", "p"], ["g", "jac_g_x"]),
@@ -189,7 +191,7 @@ def _place_of_variable(program: Program, index: int, z: Array) -> float | None:
     places = z[where.places] * program.scale[where.places]
     for table, at in ((where.nodes, program.mesh.breaks(places)), (where.inner, _points(program, z)),
                       (where.controls, _points(program, z))):  # fmt: skip
-        hit = np.flatnonzero((table == index).any(axis=1)) if table.size else []
+        hit = np.flatnonzero((table == index).any(axis=1))
         if len(hit):
             return float(at[hit[0]])
     return None

@@ -258,7 +258,9 @@ def _key(tree: Node) -> float | str:
     return tree.value if isinstance(tree, Number) else text(tree)
 
 
-def _with_derivatives(name: str, v: ca.SX, d: ca.SX, outputs: ca.SX) -> tuple[object, ...]:
+def _with_derivatives(
+    name: str, v: ca.SX, d: ca.SX, outputs: ca.SX
+) -> tuple[ca.Function, ca.Function, list[int], list[int], ca.Function, list[int], list[int]]:
     """The function, the nonzeros of its Jacobian and of its weighted Hessian's upper triangle, with their places."""
     weights = ca.SX.sym("w", outputs.size1())
     jacobian = ca.jacobian(outputs, v)
@@ -267,13 +269,18 @@ def _with_derivatives(name: str, v: ca.SX, d: ca.SX, outputs: ca.SX) -> tuple[ob
     hessian_columns, hessian_rows = _places(hessian.sparsity())
     return (
         ca.Function(name, [v, d], [ca.densify(outputs)]),
-        ca.Function(name + "_jacobian", [v, d], [ca.vertcat(*jacobian.nonzeros())]),
+        ca.Function(name + "_jacobian", [v, d], [_column(jacobian)]),
         jacobian_rows,
         jacobian_columns,
-        ca.Function(name + "_hessian", [v, d, weights], [ca.vertcat(*hessian.nonzeros())]),
+        ca.Function(name + "_hessian", [v, d, weights], [_column(hessian)]),
         hessian_rows,
         hessian_columns,
     )
+
+
+def _column(matrix: ca.SX) -> ca.SX:
+    """The nonzeros of a matrix as one column."""
+    return matrix[matrix.sparsity().find()] if matrix.nnz() else ca.SX(0, 1)
 
 
 def _places(sparsity: ca.Sparsity) -> tuple[list[int], list[int]]:

@@ -57,8 +57,8 @@ def in_parametric_form(problem: Problem, sizes: dict[str, float], squared: bool)
     """The problem in parametric form, or None where that does not apply.
 
     It applies to pure variational problems of first order whose integrand grows linearly with the derivatives and that
-    name no place between the ends.  `sizes` are typical sizes of the independent variable and of the unknowns; `squared`
-    asks for the first of the two gauges, which is granted where it is right.
+    name no place between the ends.  `sizes` are typical sizes of the independent variable and of the unknowns;
+    `squared` asks for the first of the two gauges, which is granted where it is right.
     """
     if problem.integrand is None or problem.dynamics or len(problem.places) != 2:
         return None
@@ -148,7 +148,7 @@ class _Homogeneous:
         return Product((tree, Power(self._slope, Number(float(power), str(power)))), (False, False))
 
     def of(self, tree: Node) -> tuple[Node, Fraction]:
-        """A tree h and a degree d with h = tree * x'^d, homogeneous in (x', y') of degree d, without divisions by x'."""
+        """A tree h and a degree d with h = tree * x'^d, homogeneous in (x', y') of degree d, free of 1/x'."""
         match tree:
             case Name(name=name, order=order) if name in self._unknowns and order == 1:
                 return tree, Fraction(1)

@@ -7,8 +7,9 @@ with the sign and the size that violate least.  What the user gives as a guess i
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Callable
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numpy.polynomial import polynomial
@@ -26,7 +27,7 @@ Array = NDArray[np.float64]
 BENDS = (0.1, -0.1, 0.3, -0.3, 1.0, -1.0)
 """Sizes of the bends that are tried, relative to the size of the unknown or to the range."""
 
-ARRAYS = {
+ARRAYS: dict[str, Callable[..., Any]] = {
     "sqrt": np.sqrt, "exp": np.exp, "log": np.log, "sin": np.sin, "cos": np.cos, "tan": np.tan,
     "asin": np.arcsin, "acos": np.arccos, "atan": np.arctan, "atan2": np.arctan2, "sinh": np.sinh, "cosh": np.cosh,
     "tanh": np.tanh, "abs": np.abs, "sign": np.sign, "hypot": np.hypot, "power": np.power,
@@ -89,7 +90,7 @@ def _places(problem: Problem, constants: dict[str, float], parameters: Array, wh
     if values[-1] <= values[0]:
         values[-1] = values[0] + max(1.0, abs(values[0]))
     known = np.flatnonzero(np.isfinite(values))
-    return np.interp(np.arange(len(values)), known, values[known])
+    return np.asarray(np.interp(np.arange(len(values)), known, values[known]))
 
 
 def _assemble(compiled: Compiled, where: Layout, places: Array, parameters: Array, bend: float) -> Array:
@@ -106,14 +107,14 @@ def _assemble(compiled: Compiled, where: Layout, places: Array, parameters: Arra
     state_lower, state_upper, control_lower, control_upper = quantity_bounds(compiled)
     for turn, unknown in enumerate(problem.unknowns):
         at = np.concatenate([nodes, points])
-        values = _unknown(unknown, at, places, known, constants, problem.independent, bend, turn,
-                          _middle(compiled, unknown, state_lower, state_upper, control_lower, control_upper))  # fmt: skip
+        middle = _middle(compiled, unknown, state_lower, state_upper, control_lower, control_upper)
+        values = _unknown(unknown, at, places, known, constants, problem.independent, bend, turn, middle)
         for order in range(unknown.order + 1):
             quantity = (unknown.name, order)
             if quantity in lowered.states:
                 k = lowered.states.index(quantity)
                 clipped = np.clip(values[order], state_lower[k], state_upper[k])
-                z[where.nodes[:, k]], z[where.inner[:, k]] = clipped[: len(nodes)], clipped[len(nodes) :]
+                z[where.inner[:, k]] = clipped[len(nodes) :]
                 z[where.nodes[:, k]] = clipped[: len(nodes)]
             elif quantity in lowered.controls:
                 k = lowered.controls.index(quantity)
@@ -212,7 +213,7 @@ def _given(guess: Node | tuple[tuple[float, float], ...], grid: Array, constants
     """The user's guess on a grid."""
     if isinstance(guess, tuple):
         places, values = np.array(guess).T
-        return np.interp(grid, places, values)
+        return np.asarray(np.interp(grid, places, values))
     with np.errstate(all="ignore"):
         value = evaluate(guess, lambda name, order: grid if name == independent else constants[name], ARRAYS)
     return np.broadcast_to(np.asarray(value, dtype=float), grid.shape)
@@ -223,7 +224,7 @@ def _line(known: list[tuple[int, float]] | None, at: Array, places: Array) -> Ar
     if not known:
         return None
     ordered = sorted(known)
-    return np.interp(at, [places[index] for index, _ in ordered], [value for _, value in ordered])
+    return np.asarray(np.interp(at, [places[index] for index, _ in ordered], [value for _, value in ordered]))
 
 
 def _point_values(compiled: Compiled, where: Layout, z: Array) -> Array:
@@ -264,11 +265,3 @@ def _violation(compiled: Compiled, where: Layout, z: Array) -> float:
                    *(abs(limit) for limit in (lower, upper) if np.isfinite(limit)))  # fmt: skip
         total += float(np.nanmean(excess)) / size if size > 0 else 0.0
     return 1e3 * undefined + total
-
-
-def spread_ends(compiled: Compiled, where: Layout) -> Iterator[Array]:
-    """Values of the places to try where the end is free and nothing says how far it is: powers of ten."""
-    base = guesses(compiled, where)[0]
-    places = base.z[where.places]
-    for power in (0, -1, 1, -2, 2, -3, 3):
-        yield places[0] + (places - places[0]) * 10.0**power

@@ -7,7 +7,7 @@ large-scale nonlinear programming, Mathematical Programming 106 (from memory).
 from __future__ import annotations
 
 import time
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from enum import Enum
 from typing import Any
@@ -121,7 +121,7 @@ WARM: dict[str, Any] = {
 }
 
 
-class _Watcher(ca.Callback):  # type: ignore[misc]
+class _Watcher(ca.Callback):
     """Hears of every iteration, keeps the best iterate, and can ask for a stop."""
 
     def __init__(self, program: Program, watch: Callable[[Iterate], bool]) -> None:
@@ -146,7 +146,7 @@ class _Watcher(ca.Callback):  # type: ignore[misc]
         sizes = {"f": 1, "x": self.size, "lam_x": self.size, "g": self.rows, "lam_g": self.rows}
         return ca.Sparsity.dense(sizes.get(ca.nlpsol_out(index), len(self.program.compiled.constants)), 1)
 
-    def eval(self, arguments: list[ca.DM]) -> list[float]:
+    def eval(self, arguments: Sequence[ca.DM]) -> list[float]:
         try:
             g = np.asarray(arguments[2]).ravel()
             violation = np.maximum(self.program.row_lower - g, g - self.program.row_upper)

@@ -70,8 +70,8 @@ def limits(compiled: Compiled, where: Layout, rows: Rows) -> tuple[Array, Array,
     for place, index in zip(problem.places, where.places, strict=True):
         if index not in where.parameters:
             lower[index] = upper[index] = number(place.tree, constants)
-    for state, place, condition in compiled.fixed:
-        index = where.nodes[where.at_place[place], state]
+    for state, at, condition in compiled.fixed:
+        index = where.nodes[where.at_place[at], state]
         least, most = interval_of(condition, constants)
         lower[index], upper[index] = max(lower[index], least), min(upper[index], most)
     row_lower, row_upper = np.zeros(rows.count), np.zeros(rows.count)

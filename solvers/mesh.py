@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 
@@ -62,7 +63,7 @@ def uniform(stretches: int, count: int, degree: int, family: Family = Family.RAD
     def pieces() -> Iterator[Interval]:
         edges = np.linspace(0.0, 1.0, count + 1)
         for stretch in range(stretches):
-            for left, right in zip(edges[:-1], edges[1:], strict=True):
+            for left, right in pairwise(edges):
                 yield interval(stretch, float(left), float(right), family, degree)
 
     return Mesh(tuple(pieces()))

@@ -96,7 +96,6 @@ def pursue(
     begun = _begin(pursuit, minimiser) if start is None else _begin_from(pursuit, minimiser, start, mesh)
     if begun is None:
         return pursuit
-    program, minimum = begun
     _add(pursuit, minimiser, *begun)
     _go_on(pursuit, minimiser, meshes - 1)
     return pursuit
@@ -115,10 +114,10 @@ def _go_on(pursuit: Pursuit, minimise_: _Minimiser, meshes: int) -> None:
     for _ in range(meshes):
         path = pursuit.paths[-1]
         found = refinement.estimate(path)
-        mesh: Mesh | None = refinement.refine(path, found, 0.3 * options.tolerance)
-        if mesh == path.program.mesh:
-            mesh = refinement.finer(path.program.mesh)
-        mesh = _limited(mesh, path.program.mesh, found, options.points)
+        better = refinement.refine(path, found, 0.3 * options.tolerance)
+        if better == path.program.mesh:
+            better = refinement.finer(better)
+        mesh = _limited(better, path.program.mesh, found, options.points)
         if mesh is None:
             pursuit.end = End.POINTS
             return
@@ -179,7 +178,7 @@ class _Minimiser:
                     mesh.points,
                     iterate.value * program.value_scale,
                     iterate.infeasibility,
-                )  # fmt: skip
+                )
             )
             return self.stopped
 
@@ -198,7 +197,7 @@ class _Minimiser:
                 error,
                 minimum.iterations,
                 minimum.seconds + minimum.set_up,
-            )  # fmt: skip
+            )
         )
         if self.watch is not None:
             breaks = self.pursuit.paths[-1].breaks
@@ -213,7 +212,7 @@ class _Minimiser:
                     None,
                     error,
                     tuple(float(b) for b in breaks),
-                )  # fmt: skip
+                )
             )
 
 
@@ -291,8 +290,9 @@ def _after_least_violation(
         return None
     if least.total > 1e-6:
         pursuit.end, pursuit.findings = End.INFEASIBLE, least.findings
-        pursuit.nearest = trajectory(program, replace(least.minimum, z=least.z,
-                                     multipliers=np.zeros(program.rows.count), bound_multipliers=np.zeros(len(least.z))))  # fmt: skip
+        nothing = replace(least.minimum, z=least.z, multipliers=np.zeros(program.rows.count),
+                          bound_multipliers=np.zeros(len(least.z)))  # fmt: skip
+        pursuit.nearest = trajectory(program, nothing)
         return None
     minimum = minimise_(program, Start(least.z), ATTEMPTS[1])
     if minimum.outcome in SOLVED:
@@ -378,9 +378,9 @@ def _limited(mesh: Mesh, old: Mesh, found: refinement.Estimate, points: int) -> 
         return None
     groups: list[list[Any]] = []
     for piece in old.intervals:
-        inside = [i for i in mesh.intervals if i.stretch == piece.stretch
-                  and piece.start - 1e-15 <= i.start and i.start + i.width <= piece.start + piece.width + 1e-14]  # fmt: skip
-        groups.append(inside)
+        end = piece.start + piece.width + 1e-14
+        same = (i for i in mesh.intervals if i.stretch == piece.stretch)
+        groups.append([i for i in same if piece.start - 1e-15 <= i.start and i.start + i.width <= end])
     chosen: list[list[Any]] = [[piece] for piece in old.intervals]
     total = old.points
     for k in np.argsort(-found.errors):

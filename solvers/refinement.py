@@ -10,6 +10,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 from numpy.polynomial import legendre
@@ -140,7 +141,7 @@ def _replace(old: Interval, found: Estimate, k: int, tolerance: float, width: fl
             cuts = [max(bend - 0.15, bend / 2), min(bend + 0.15, (1 + bend) / 2)]
     edges = [start, *(start + cut * old.width for cut in cuts), end]
     smooth_degree = max(degree, 5) if fall >= SMOOTH else degree
-    for left, right in zip(edges[:-1], edges[1:], strict=True):
+    for left, right in pairwise(edges):
         touching = (left == start and old.start == 0.0) or (right == end)
         yield interval(old.stretch, left, right, family if touching else Family.RADAU, smooth_degree)
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
+from itertools import pairwise
 
 import numpy as np
 from numpy.polynomial import legendre
@@ -31,7 +32,7 @@ def regraph(
     between = np.linspace(-0.97, 0.97, 9)
     size = float(np.abs(functions[leading](breaks)).max()) or 1.0
     pieces: list[tuple[float, float, dict[str, Array]]] = []
-    waiting = [(float(a), float(b)) for a, b in zip(breaks[:-1], breaks[1:], strict=True)][::-1]
+    waiting = [(float(a), float(b)) for a, b in pairwise(breaks)][::-1]
     while waiting:
         start, end = waiting.pop()
         left, right = (float(value) for value in x(np.array([start, end])))

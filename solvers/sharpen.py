@@ -1,4 +1,4 @@
-"""Bang-bang and singular problems sharpened: structure read off a softened solve, switches made unknown, solved again."""
+"""Bang-bang and singular problems sharpened: switches read off a softened solve, made unknown, solved again."""
 
 from __future__ import annotations
 

@@ -125,8 +125,8 @@ def _as_graph(problem: Problem, gauged: Gauged, shape: Curve, multipliers: Curve
     names = {unknown.name for unknown in problem.unknowns}
     costates = {name: partial(_scaled, multipliers, name, factor) for name in multipliers.functions if name in names}
     leading = problem.unknowns[0].name
-    graph = regraph(shape.breaks, partial(shape.evaluate, x), functions | {f"costate {n}": f for n, f in costates.items()},
-                    leading)  # fmt: skip
+    wanted = functions | {f"costate {name}": function for name, function in costates.items()}
+    graph = regraph(shape.breaks, partial(shape.evaluate, x), wanted, leading)
     return (
         Curve(graph.breaks, {name: graph.functions[name] for name in functions}),
         Curve(graph.breaks, {name: graph.functions[f"costate {name}"] for name in costates}),

@@ -8,6 +8,7 @@ where it happens the curve has a corner, and no polynomial across it converges. 
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -74,7 +75,7 @@ def _changes(path: Trajectory, values: Array, labels: Array, lower: float, upper
             continue
         kept.append(run)
     found = []
-    for before, after in zip(kept[:-1], kept[1:], strict=True):
+    for before, after in pairwise(kept):
         left, right = before[1], after[0]
         if labels[before[0]] == labels[after[0]]:
             continue
@@ -135,7 +136,8 @@ def with_switches(problem: Problem, found: list[Switch], path: Trajectory, chose
         kept = [switch for switch in kept if switch.place != spots[needless[0]][0]]
     if not kept:
         return None
-    places, parameters = [], []
+    places: list[Place] = []
+    parameters: list[Parameter] = []
     for index, (at, place) in enumerate(spots):
         if place is None:
             name = f"{SWITCH} {len(parameters) + 1}"
@@ -174,7 +176,7 @@ def _held(path: Trajectory, places: Array, chosen: list[int]) -> tuple[Held, ...
     found = []
     for index in chosen:
         labels = _labels(path.controls[:, index], float(lower[index]), float(upper[index]))
-        for stretch, (start, end) in enumerate(zip(places[:-1], places[1:], strict=True)):
+        for stretch, (start, end) in enumerate(pairwise(places)):
             margin = 0.15 * (end - start)
             inside = labels[(path.points > start + margin) & (path.points < end - margin)]
             for side in (-1, 1):
@@ -184,7 +186,7 @@ def _held(path: Trajectory, places: Array, chosen: list[int]) -> tuple[Held, ...
 
 
 def softened(path: Trajectory, chosen: list[int], softness: float) -> Problem:
-    """The problem with a weight, relative to the value's own size, on the squares of some controls: it calms singular arcs."""
+    """The problem with a weight, relative to the value's size, on the squares of controls: it calms singular arcs."""
     compiled = path.program.compiled
     problem = compiled.lowered.problem
     span = float(np.ptp(path.places))

@@ -3,8 +3,9 @@
 The program's variables z are, interval by interval, the states at its left end, the states and controls at its points,
 then the last states, the places, the parameters and the integrals, each divided by its scale.  Its constraints are, in
 this order: collocation defects, end values of Gauss intervals, pointwise constraints, controls at the ends,
-definitions of the integrals, conditions at places.  Every nonlinear number is made by the two functions of `solvers.functions`, mapped; all else
-is constant, so that the set-up is a few array operations whatever the size of the mesh.
+definitions of the integrals, conditions at places.  Every nonlinear number is made by the two functions of
+`solvers.functions`, mapped; all else is constant, so that the set-up is a few array operations whatever the size of the
+mesh.
 """
 
 from __future__ import annotations
@@ -397,12 +398,12 @@ def _linear_part(
         all_columns.append(np.broadcast_to(support[:, None, :, :], shape).ravel())
         all_values.append(np.broadcast_to(scheme.differentiate[None, :, :, None], shape).ravel())
         if scheme.family is Family.GAUSS:
-            rank = np.array([gauss_rank[int(k)] for k in members])
-            row = rows.ends + rank[:, None] * n + states  # G x n
-            shape = (len(members), scheme.degree + 1, n)
-            all_rows += [np.broadcast_to(row[:, None, :], shape).ravel(), row.ravel()]
+            ranks = np.array([gauss_rank[int(k)] for k in members])
+            row = rows.ends + ranks[:, None] * n + states  # G x n
+            wide = (len(members), scheme.degree + 1, n)
+            all_rows += [np.broadcast_to(row[:, None, :], wide).ravel(), row.ravel()]
             all_columns += [support.ravel(), where.nodes[members + 1].ravel()]
-            all_values += [np.broadcast_to(scheme.extrapolate[None, :, None], shape).ravel(), -np.ones(row.size)]
+            all_values += [np.broadcast_to(scheme.extrapolate[None, :, None], wide).ravel(), -np.ones(row.size)]
     row, column, value = (np.concatenate(part) for part in (all_rows, all_columns, all_values))
     return row.astype(np.int64), column.astype(np.int64), value * scale[column] / row_scale[row]
 

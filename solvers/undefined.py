@@ -42,7 +42,7 @@ def undefined_places(compiled: Compiled, where: Layout, z: Array) -> tuple[Findi
 
     def value_of(tree: Node) -> Array:
         with np.errstate(all="ignore"):
-            return np.broadcast_to(np.asarray(evaluate(tree, look_up, ARRAYS), dtype=float), points.shape)
+            return np.broadcast_to(np.array(evaluate(tree, look_up, ARRAYS), dtype=np.float64), points.shape)
 
     found: dict[str, Finding] = {}
     for tree, pointer in _formulas(compiled):
