@@ -4,7 +4,8 @@ It imports the function's module (that is the preloading), says `ready`, then an
 
     parent -> child   {"kind": "job", "head": {...}} + body;  {"kind": "cancel"}
     child -> parent   {"kind": "ready"}, {"kind": "begun"}, {"kind": "progress", "event": {...}},
-                      {"kind": "answer", "head": {...}} + body,  {"kind": "error", "error", "message", "trace"}
+                      {"kind": "answer", "head": {...}, "seconds"} + body,
+                      {"kind": "error", "error", "message", "trace", "seconds"}
 
 The function is `f(head, body, report, stop) -> (head, body)`: `report(event)` tells progress, `stop()` is True once the
 job is cancelled.  A second thread reads the socket, so that a cancel arrives while the first one is in a solver, and
@@ -23,6 +24,7 @@ import resource
 import signal
 import socket
 import threading
+import time
 import traceback
 from collections.abc import Callable, Mapping
 from typing import Any
@@ -110,15 +112,17 @@ def _serve(line: _Line, function: Function) -> None:
             continue
         tidy = False
         line.send({"kind": "begun"})
+        began = time.perf_counter()
         try:
             head, answer = function(
                 request["head"], body, lambda event: line.send({"kind": "progress", "event": event}), line.stop
             )
-            line.send({"kind": "answer", "head": head}, answer)
+            line.send({"kind": "answer", "head": head, "seconds": time.perf_counter() - began}, answer)
         except BaseException as error:  # whatever it is, it is the job's outcome and not the end of the child
             trace = "".join(traceback.format_exception(error))
             name, message = type(error).__name__, str(error)[:2000]
-            line.send({"kind": "error", "error": name, "message": message, "trace": trace[-8000:]})
+            seconds = time.perf_counter() - began
+            line.send({"kind": "error", "error": name, "message": message, "trace": trace[-8000:], "seconds": seconds})
         del body
 
 

@@ -116,9 +116,9 @@ class Slot:
                     case "progress":
                         report(head["event"])
                     case "answer":
-                        return Outcome(Ending.ANSWERED, head["head"], body, seconds=now - (begun or sent))
+                        return Outcome(Ending.ANSWERED, head["head"], body, seconds=head["seconds"])
                     case "error":
-                        return _raised(head, now - (begun or sent))
+                        return _raised(head)
             if self._shut.is_set():
                 return self._kill(Ending.CLOSED, "the server was closed", sent)
             if self._cancelled.is_set() and kill_at == float("inf"):
@@ -184,7 +184,8 @@ def _memory_reason(job: Job) -> str:
     return f"memory limit: it needed more than {job.memory / 2**20:.0f} MB"
 
 
-def _raised(head: dict[str, Any], seconds: float) -> Outcome:
+def _raised(head: dict[str, Any]) -> Outcome:
+    seconds = head["seconds"]
     if head["error"] == "MemoryError":
         reason = "memory limit: an allocation was refused"
         return Outcome(Ending.LIMIT, reason=reason, detail=head["trace"], seconds=seconds)

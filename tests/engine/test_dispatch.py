@@ -25,7 +25,7 @@ def test_a_run_is_solved_and_its_result_kept(start, submit, ended):
     run = ended(store, submit(dispatcher, say="hello"))
     assert (run.state, run.attempt, run.deaths, run.owner) == (State.FINISHED, 1, 0, None)
     assert (run.verdict, run.value, run.value_error, run.value_unit) == ("local minimum", 1.5, 1e-9, "m")
-    assert run.seconds < 1
+    assert 0 < run.seconds < 10
     assert json.loads(store.result(run.id)) == {"id": run.id, "answer": "hello"}
 
 
@@ -190,13 +190,13 @@ def test_a_full_queue_refuses_and_keeps_what_it_has(start, submit):
 
 def test_progress_is_in_order_thinned_and_ends_with_the_last_sign(start, submit):
     dispatcher, _ = start()
-    events = [event.data for event in progress_of(dispatcher, submit(dispatcher, "count", steps=60))]
+    events = [event.data for event in progress_of(dispatcher, submit(dispatcher, "count", steps=300, pause=0))]
     assert events[0] == {"kind": "state", "state": "solving"}
     assert [event["kind"] for event in events[-3:]] == ["iteration", "mesh", "end"]
     iterations = [event["iteration"] for event in events if event["kind"] == "iteration"]
     assert iterations == sorted(set(iterations))
-    assert iterations[-1] == 59
-    assert len(iterations) < 30
+    assert iterations[-1] == 299
+    assert len(iterations) < 150
     assert events[-1] == {"kind": "end", "state": "finished"}
 
 

@@ -1,7 +1,7 @@
 """Frames arrive whole, in order and unchanged, however the stream is cut."""
 
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from service.engine.frames import FrameError, Unpacker, pack
@@ -10,6 +10,7 @@ VALUES = st.none() | st.integers() | st.text() | st.floats(allow_nan=False, allo
 HEADS = st.dictionaries(st.text(max_size=5), VALUES)
 
 
+@settings(max_examples=50, deadline=None)
 @given(st.lists(st.tuples(HEADS, st.binary(max_size=40)), max_size=5), st.integers(1, 50))
 def test_any_cut_of_the_stream_gives_the_same_frames(frames, size):
     stream = b"".join(pack(head, body) for head, body in frames)

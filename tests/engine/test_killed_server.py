@@ -11,7 +11,7 @@ from service.store import Store
 
 HERE = Path(__file__).parent
 LIVES = 3
-RUNS = 10
+RUNS = 8
 
 
 def test_no_accepted_run_is_lost_by_killing_the_server(tmp_path, until):
@@ -24,13 +24,15 @@ def test_no_accepted_run_is_lost_by_killing_the_server(tmp_path, until):
             assert server.stdout.readline() == "ready\n"
             for number in range(RUNS):
                 say = f"{life}.{number}"
-                order = {"do": "append", "file": str(file), "say": say, "seconds": 0.02}
+                order = {"do": "append", "file": str(file), "say": say, "seconds": 0.2}
                 server.stdin.write(json.dumps(order) + "\n")
                 server.stdin.flush()
                 accepted[server.stdout.readline().strip()] = say
-            until(lambda: _children(server.pid))
+            before = _lines(file)
+            until(lambda before=before: _lines(file) > before)
             children = _children(server.pid)
             server.kill()
+        assert len(children) == 2
         until(lambda pids=children: not any(_runs(pid) for pid in pids), 5)
 
     store = Store(Settings(data=data).database_url)
@@ -48,6 +50,10 @@ def test_no_accepted_run_is_lost_by_killing_the_server(tmp_path, until):
         assert set(file.read_text().split()) == set(accepted.values())
     finally:
         store.close()
+
+
+def _lines(file):
+    return len(file.read_text().split()) if file.exists() else 0
 
 
 def _children(pid):

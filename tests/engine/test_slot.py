@@ -80,7 +80,7 @@ def test_an_exception_is_an_outcome_and_the_child_lives_on(slot, make_job, do, r
 def test_a_memory_hog_is_killed_near_the_limit_and_named(slot, make_job):
     outcome = slot.run(make_job("hog", megabytes=2000, memory=150 * MEGABYTE), ignore)
     assert (outcome.ending, outcome.reason) == (Ending.LIMIT, "memory limit: it needed more than 150 MB")
-    assert outcome.seconds < 5
+    assert outcome.seconds < 15
     assert slot.run(make_job(say="next"), ignore).ending is Ending.ANSWERED
 
 
@@ -93,7 +93,7 @@ def test_the_wall_limit_ends_even_a_deaf_job(slot, make_job):
     began = time.monotonic()
     outcome = slot.run(make_job("deaf", wall=0.4), ignore)
     assert (outcome.ending, outcome.reason) == (Ending.LIMIT, "wall limit: killed after 0.4 s")
-    assert 0.4 <= time.monotonic() - began < 2
+    assert 0.4 <= time.monotonic() - began < 10
 
 
 def test_a_cancel_lets_the_job_answer_with_what_it_has(slot, make_job):
@@ -115,7 +115,7 @@ def test_a_deaf_job_is_killed_after_the_grace(slot, make_job):
 
     outcome = slot.run(make_job("deaf"), cancel)
     assert (outcome.ending, outcome.reason) == (Ending.STOPPED, "stopped on request")
-    assert 0.3 <= time.monotonic() - cancelled[0] < 2
+    assert 0.3 <= time.monotonic() - cancelled[0] < 10
     slot.arm()
     assert slot.run(make_job(say="next"), ignore).ending is Ending.ANSWERED
 

@@ -54,7 +54,7 @@ def test_a_held_back_iteration_is_shown_although_nothing_follows(hub):
                 return event
         raise AssertionError("the stream ended")
 
-    assert asyncio.run(asyncio.wait_for(last_sign(), 1)).data == iteration(2)
+    assert asyncio.run(asyncio.wait_for(last_sign(), 10)).data == iteration(2)
 
 
 def test_all_followers_see_the_same_events_while_a_thread_publishes(hub):
