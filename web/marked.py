@@ -16,7 +16,7 @@ class Complaint:
     """One complaint, ready to be shown.
 
     `field` is where to go to put it right, `start` and `end` the characters there to select, `line` the line that they
-    are in (0: not known).  `before`, `marked` and `after` are empty together where it is not about characters.
+    are in (0: not known), `where` the place in words.  `before`, `marked` and `after` are empty together where it is not about characters.
     """
 
     message: str
@@ -30,6 +30,7 @@ class Complaint:
     start: int = 0
     end: int = 0
     line: int = 0
+    where: str = ""
 
 
 def complaint(given: Mapping[str, Any], *, field: str = "", text: str = "") -> Complaint:

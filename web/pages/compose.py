@@ -14,6 +14,7 @@ from web.form.draft import FORM, JSON, Draft
 from web.form.filling import kept_back
 from web.form.reading import REST, field_of, rows
 from web.form.sections import HEAD, SECTIONS, Column, Kind, Section, Shape
+from web.form.spoken import spoken
 from web.form.text_place import line_of, place_of
 from web.form.understood import understood
 from web.marked import Complaint, complaint
@@ -128,7 +129,8 @@ def compose_page(
 
 def _complaints(draft: Draft, given: Sequence[Mapping[str, Any]]) -> tuple[Complaint, ...]:
     own = [
-        Complaint(message=item.message, hint=item.hint, code=item.code, field=item.field) for item in draft.complaints
+        Complaint(item.message, item.hint, item.code, field=item.field, where=spoken(item.field, draft.fields))
+        for item in draft.complaints
     ]
     if draft.view == JSON and own:
         return tuple(own)  # the text cannot be read: the check says the same in other words
@@ -136,7 +138,10 @@ def _complaints(draft: Draft, given: Sequence[Mapping[str, Any]]) -> tuple[Compl
     for item in given:
         field = field_of(str(item.get("pointer") or ""), draft.places) or draft.places.get("", "")
         made = complaint(item, field=field, text=_concerned(draft, item, field))
-        found.append(_placed(made, draft.text, item) if draft.view == JSON else made)
+        if draft.view == JSON:
+            found.append(_placed(made, draft.text, item))
+        else:
+            found.append(replace(made, where=spoken(field, draft.fields)))
     return (*own, *found)
 
 
@@ -147,7 +152,8 @@ def _placed(made: Complaint, text: str, given: Mapping[str, Any]) -> Complaint:
     if place is None:
         return made
     start, end = place
-    return replace(made, start=start, end=end, line=line_of(text, start))
+    line = line_of(text, start)
+    return replace(made, start=start, end=end, line=line, where=f"Line {line}")
 
 
 def _concerned(draft: Draft, given: Mapping[str, Any], field: str) -> str:
