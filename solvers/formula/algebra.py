@@ -154,7 +154,7 @@ class _Monomial:
         size = abs(self.coefficient)
         above = [_powered(base, e) for base, e in self.factors.items() if e > 0]
         below = [_powered(base, -e) for base, e in self.factors.items() if e < 0]
-        if self.decimal and _finite(size):
+        if (self.decimal and _finite(size)) or not _small(size):
             if size != 1 or not above:
                 above.insert(0, _numeral(size, True))
         else:
@@ -196,11 +196,11 @@ def _monomial(factors: Iterable[tuple[Node, Fraction]]) -> _Monomial:
         base, exponent = waiting.pop()
         whole = exponent.denominator == 1
         match base:
-            case Number() if (folded := _folded(base, exponent)) is not None:
+            case Number() if (folded := _folded(base, exponent)) is not None and _small(coefficient * folded):
                 coefficient *= folded
                 decimal = decimal or not base.text.lstrip("-").isdigit()
             case Sum() if whole and (number := rational(base)):
-                coefficient *= number**exponent.numerator
+                waiting.append((_numeral(number, False), exponent))
             case Negative(operand=operand) if whole:
                 coefficient *= (-1) ** (exponent.numerator % 2)
                 waiting.append((operand, exponent))
@@ -225,14 +225,20 @@ def _collect(collected: dict[Node, Fraction], base: Node, exponent: Fraction) ->
 
 def _folded(number: Number, exponent: Fraction) -> Fraction | None:
     """The power of a number as an exact fraction, or None where it is better left as it stands."""
-    if exponent.denominator != 1 or abs(exponent) > 30 or (number.text and float(number.text) != number.value):
-        return None  # an irrational power, or a number that was converted from another unit
-    if not math.isfinite(number.value) or (number.value == 0 and exponent < 0):
+    if exponent.denominator != 1 or abs(exponent) > 30 or not math.isfinite(number.value):
         return None
-    value = Fraction(number.text or repr(number.value))
+    try:
+        value = Fraction(number.text or repr(number.value))
+    except ValueError:  # assembly made one number of a formula such as 3*pi
+        return None
+    if float(value) != number.value or (value == 0 and exponent < 0):
+        return None  # a number converted from another unit, or no number
     power: Fraction = value**exponent.numerator
-    small = max(abs(power.numerator), power.denominator) < _LARGEST
-    return power if small else None
+    return power if _small(power) else None
+
+
+def _small(value: Fraction) -> bool:
+    return max(abs(value.numerator), value.denominator) < _LARGEST
 
 
 def _finite(value: Fraction) -> bool:
@@ -241,9 +247,9 @@ def _finite(value: Fraction) -> bool:
 
 
 def _numeral(value: Fraction, decimal: bool) -> Node:
-    if value.denominator == 1:
+    if value.denominator == 1 and _small(value):
         return Number(float(value), str(value.numerator))
-    if decimal and _finite(value):
+    if (decimal and _finite(value)) or not _small(value):
         return Number(float(value), repr(float(value)))
     above, below = (Number(float(part), str(part)) for part in (value.numerator, value.denominator))
     return Product((above, below), (False, True))

@@ -8,7 +8,7 @@ from html import escape
 from itertools import pairwise
 
 from solvers.formula.nodes import FUNCTIONS, At, Call, Name, Negative, Node, Number, Power, Product, Relation, Sum
-from solvers.formula.printer import ATOM, POWER, PRODUCT, SIGNED, numeral, text, tightness
+from solvers.formula.printer import ATOM, POWER, PRODUCT, SIGNED, numeral, text, tightness, written
 
 GREEK = {
     "alpha": "α", "beta": "β", "gamma": "γ", "delta": "δ", "epsilon": "ε", "zeta": "ζ", "eta": "η", "theta": "θ",
@@ -92,7 +92,8 @@ class _Printer:
     def node(self, tree: Node) -> str:
         match tree:
             case Number():
-                return _number(numeral(tree))
+                number = written(tree)
+                return _number(numeral(number)) if isinstance(number, Number) else self.node(number)
             case Name(name=name, order=order):
                 return _name(name, order)
             case At(name=name, order=order, place=place, side=side):
@@ -207,15 +208,14 @@ def _operator(function: str) -> str:
     return f"<mfrac><mrow>{above}</mrow><mrow>{below}</mrow></mfrac>"
 
 
-def _number(written: str) -> str:
+def _number(literal: str) -> str:
     """Digits, with a power of ten where the user wrote an exponent."""
-    sign = _MINUS if written.startswith("-") else ""
-    digits, _, exponent = escape(written).lstrip("-").lower().partition("e")
+    digits, _, exponent = literal.lower().partition("e")
     shown = f"<mn>{digits}</mn>"
     if exponent:
         minus = "<mo>−</mo>" if exponent.startswith("-") else ""
         shown += f"{_CROSS}<msup><mn>10</mn><mrow>{minus}<mn>{exponent.lstrip('+-')}</mn></mrow></msup>"
-    return sign + shown
+    return shown
 
 
 def _name(name: str, order: int) -> str:

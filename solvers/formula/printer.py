@@ -2,10 +2,16 @@
 
 from __future__ import annotations
 
+import re
+
+from solvers.formula.errors import FormulaError
 from solvers.formula.nodes import At, Call, Name, Negative, Node, Number, Power, Product, Relation, Sum
+from solvers.formula.parser import parse_expression
 
 SUM, SIGNED, PRODUCT, POWER, ATOM = range(5)
 """How tightly the parts of a node hold together."""
+
+_LITERAL = re.compile(r"(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?", re.ASCII)
 
 
 def text(tree: Node | Relation) -> str:
@@ -14,7 +20,8 @@ def text(tree: Node | Relation) -> str:
         case Relation(sides=sides, signs=signs):
             return _joined(sides, ("", *(f" {sign} " for sign in signs)), SUM, SUM)
         case Number():
-            return numeral(tree)
+            shown = written(tree)
+            return numeral(shown) if isinstance(shown, Number) else text(shown)
         case Name(name=name, order=order):
             return name + "'" * order
         case At(name=name, order=order, place=place, side=side):
@@ -44,6 +51,16 @@ def numeral(number: Number) -> str:
     return number.text or repr(number.value).removesuffix(".0")
 
 
+def written(number: Number) -> Node:
+    """The number as the tree that its text stands for: assembly may have made one number of `3/2` or of `-12`."""
+    if _LITERAL.fullmatch(numeral(number)):
+        return number
+    try:
+        return parse_expression(numeral(number))
+    except FormulaError:
+        return Number(abs(number.value), "") if number.value >= 0 else Negative(Number(-number.value, ""))
+
+
 def tightness(tree: Node) -> int:
     """The level of a node in the grammar."""
     match tree:
@@ -51,8 +68,9 @@ def tightness(tree: Node) -> int:
             return SUM
         case Negative():
             return SIGNED
-        case Number() if numeral(tree).startswith("-"):
-            return SIGNED
+        case Number():
+            shown = written(tree)
+            return ATOM if isinstance(shown, Number) else tightness(shown)
         case Product():
             return PRODUCT
         case Power():
@@ -67,6 +85,8 @@ def _part(tree: Node, least: int) -> str:
 
 def _exponent(tree: Node) -> str:
     """A sign needs no parentheses in an exponent, where it binds as tightly as there is need."""
+    if isinstance(tree, Number):
+        tree = written(tree)
     if isinstance(tree, Negative) and tightness(tree.operand) >= POWER:
         return text(tree)
     return _part(tree, POWER)

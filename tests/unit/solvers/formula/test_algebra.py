@@ -91,6 +91,28 @@ def test_signs_quotients_powers_and_numbers():
     assert rational(tree("1 + a")) is None
 
 
+@pytest.mark.parametrize(
+    "formula",
+    [
+        "(1 + 1)^999999999*a",
+        "999999999*" * 60 + "a",
+        "a^999999999",
+        "2^999999^9*a",
+        "1e308*1e308*a + 1e308*a",
+        "1e-308*1e-308*a",
+        " + ".join(f"a/{n}" for n in range(9001, 9400, 2)),
+    ],
+)
+def test_numbers_beyond_reading_stay_as_they_are_and_cost_nothing(formula):
+    assert len(text(multiply([add([tree(formula)]), Name("b")]))) < len(formula) + 50
+
+
+def test_numbers_that_assembly_converted_are_not_folded():
+    millimetres, formula = Number(0.003, "3"), Number(0.0015, "3/2")
+    assert text(multiply([millimetres, Number(2.0, "2"), Name("a")])) == "2*3*a"
+    assert value(multiply([millimetres, Number(2.0, "2"), formula])) == pytest.approx(9e-6)
+
+
 leaves = st.sampled_from([*map(Name, POINT), *(Number(float(t), t) for t in ("0", "1", "2", "0.25", "3"))])
 
 

@@ -5,8 +5,9 @@ import xml.etree.ElementTree as ET
 import pytest
 
 from solvers.formula.mathml import Range, functional_mathml, mathml
-from solvers.formula.nodes import Call, Name, Number
+from solvers.formula.nodes import Call, Name, Number, Power, Product
 from solvers.formula.parser import parse_either, parse_expression
+from solvers.formula.printer import text
 
 EXTENT = Range("t", Number(0.0, "0"), Name("T"))
 
@@ -106,6 +107,14 @@ def test_the_element_says_how_it_stands_and_keeps_its_source():
     assert mathml(tree) == ("<math><semantics><mrow><mi>a</mi><mo>\u2062</mo><mi>b</mi></mrow>" + source.format("a*b"))
     assert mathml(tree, block=True).startswith('<math display="block">')
     assert mathml(tree, label="a · b").endswith(source.format("a · b"))
+
+
+def test_a_number_that_stands_for_a_formula_is_drawn_as_the_formula():
+    # assembly converts `-3/2` in mm or `2*Length` to one number in m; the text stays
+    tree = Product((Number(-0.0015, "-3/2"), Name("y")), (False, True))
+    assert drawn(ET.fromstring(mathml(tree))) == "[−[3]/[2]]/[y]"
+    assert text(tree) == "(-3/2)/y"
+    assert text(Power(Number(0.002, "2*Length"), Number(-2.0, ""))) == "(2*Length)^-2"
 
 
 def test_nothing_from_outside_becomes_markup():
