@@ -18,7 +18,7 @@ export function changes(iterations) {
 export function decadesAround(numbers, most = 16) {
   const powers = numbers.filter((number) => number > 0).map(Math.log10);
   if (!powers.length) return [-8, 0];
-  const high = Math.ceil(Math.max(...powers));
+  const high = Math.ceil(Math.max(...powers)) + 0; // no negative zero
   const low = Math.min(Math.max(Math.floor(Math.min(...powers)), high - most), high - 1);
   return [low, high];
 }
