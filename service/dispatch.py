@@ -128,14 +128,11 @@ class Dispatcher:
 
     async def wait(self, id: str, seconds: float) -> Run | None:
         """The run when it has ended, or as it is after so many seconds; None where there is no such run."""
-        waiting = asyncio.create_task(self._progress.ended(id, seconds))
-        try:
+        if id not in self._held:  # else it is known and has not ended: no need to ask
             run = await asyncio.to_thread(self._store.get, id)
             if run is None or run.state.ended:
                 return run
-            await waiting
-        finally:
-            waiting.cancel()
+        await self._progress.ended(id, seconds)
         return await asyncio.to_thread(self._store.get, id)
 
     async def follow(self, id: str, after: str | None = None) -> AsyncIterator[Event]:
