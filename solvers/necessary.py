@@ -162,7 +162,7 @@ class _Derivation:
         costates = {q: Name(f"{letter}_{q[0]}" + (f"_{q[1]}" if q[1] else "")) for q in self.lowered.states}
         terms = [self.explicit(self.lagrangian)]
         for (name, k), costate in costates.items():
-            terms.append(multiply([costate, self.explicit(Name(name, k + 1))]))
+            terms.append(multiply([costate, add([self.explicit(Name(name, k + 1))])]))
         hamiltonian, shown = add(terms), Name(unused(self.problem, "H"))
         yield self.definition("Hamiltonian", shown, hamiltonian)
         for quantity, costate in costates.items():

@@ -4,20 +4,8 @@ from __future__ import annotations
 
 from solvers.formula.errors import FormulaError
 from solvers.formula.nodes import (
-    FUNCTIONS,
-    At,
-    Call,
-    Name,
-    Negative,
-    Node,
-    Number,
-    Power,
-    Product,
-    Relation,
-    Span,
-    Sum,
-    walk,
-)
+    FUNCTIONS, At, Call, Name, Negative, Node, Number, Power, Product, Relation, Span, Sum, walk,
+)  # fmt: skip
 from solvers.formula.tokens import Token, tokens
 
 DEPTH_LIMIT = 100

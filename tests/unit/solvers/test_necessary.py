@@ -215,6 +215,36 @@ def test_a_climbing_vehicle_has_an_endpoint_term_and_abbreviations():
     assert "greatest" in result.notes[-1]
 
 
+def test_dynamics_that_need_each_other_are_put_in():
+    given = problem({"y": 2, "z": 1, "u": 0}, "u^2/2", dynamics=["y'' = u - z", "z' = y'' + u"])
+    assert texts(necessary_conditions(given))[:5] == [
+        "H: H = u^2/2 + p_y*y' + p_y_1*(u - z) + p_z*(2*u - z)",
+        "y: p_y' = 0",
+        "y': p_y_1' = -p_y",
+        "z: p_z' = p_y_1 + p_z",
+        "u: u + p_y_1 + 2*p_z = 0",
+    ]
+
+
+def test_a_closed_curve_has_the_same_momenta_at_both_ends():
+    given = problem({"y": 1}, "y'^2", endpoints=["y(0) - y(1) = 0"])
+    result = necessary_conditions(given)
+    assert texts(result, "natural boundary") == ["y: 2*y' = ν at x = 0", "y: 2*y' = ν at x = 1"]
+
+
+def test_both_ends_may_be_free_and_used_inside():
+    given = problem(
+        {"y": 1}, "x*y'^2 + R*y + b*y", ends=("a", "b"), parameters=["a", "b", "R"], endpoint="R^2 + a^2",
+        endpoints=["y(a) = 0", "y(b) - b^2 = 0"],
+    )  # fmt: skip
+    assert texts(necessary_conditions(given))[1:] == [
+        "y: 2*x*y' = -ν at x = b",
+        "a: -x*y'^2 + R*y + b*y = 2*a at x = a",
+        "b: -x*y'^2 + R*y + b*y = 2*ν*b - integral(y) at x = b",
+        "R: 2*R + integral(y) = 0",
+    ]
+
+
 def test_a_pointwise_equality_has_a_multiplier_that_varies():
     given = problem({"x": 1, "y": 1}, "x*y' - y*x'", independent="s", constraints=["x'^2 + y'^2 = 1"])
     result = necessary_conditions(given)
