@@ -3,31 +3,29 @@
 from __future__ import annotations
 
 import time
-from collections.abc import Callable
-from functools import partial
 
 import numpy as np
-from numpy.typing import NDArray
 
-from solvers.curve import Curve
+from solvers import checks
 from solvers.diagnosis import diagnose
 from solvers.functions import compile_problem
 from solvers.gauge import Gauged, in_parametric_form
+from solvers.graph import as_graph, checks_on_graph, prices_of_original
 from solvers.guess import guesses
 from solvers.lowering import lower
+from solvers.prices import prices
 from solvers.problem import Problem
 from solvers.pursuit import End, Pursuit, first_mesh, go_on, pursue
-from solvers.regraph import regraph
 from solvers.scaling import find_scales
 from solvers.sharpen import sharpen
 from solvers.solution import Solution, Verdict, Watch
+from solvers.structure import present_switches
 from solvers.trajectory import costate_curve, curve
 from solvers.transcription import layout
+from solvers.verdict import End as SearchEnd
+from solvers.verdict import judge
 
-Array = NDArray[np.float64]
-
-
-_EARLY = {End.INFEASIBLE: Verdict.INFEASIBLE, End.UNBOUNDED: Verdict.NO_OPTIMUM}
+EARLY = {End.INFEASIBLE: Verdict.INFEASIBLE, End.UNBOUNDED: Verdict.NO_OPTIMUM}
 """Verdicts that need no curve."""
 
 SHARE = 0.6
@@ -55,12 +53,13 @@ def _in_given_form(problem: Problem, watch: Watch | None, deadline: float) -> Pu
         return pursuit
     now = time.perf_counter()
     sharp = sharpen(pursuit, watch, now + SHARE * (deadline - now))
-    if sharp is not None and sharp.end in (End.CONVERGED, End.SETTLED):
-        return sharp
+    if sharp is not None:
+        sharp.steps[:0] = pursuit.steps
+        sharp.iterations += pursuit.iterations
+        if sharp.end in (End.CONVERGED, End.SETTLED):
+            return sharp
     plain = go_on(pursuit, watch, deadline)
-    if sharp is not None and sharp.value_error < plain.value_error:
-        return sharp
-    return plain
+    return sharp if sharp is not None and sharp.value_error < plain.value_error else plain
 
 
 def _sizes(problem: Problem) -> dict[str, float]:
@@ -77,65 +76,61 @@ def _sizes(problem: Problem) -> dict[str, float]:
 
 
 def _solution(problem: Problem, pursuit: Pursuit, gauged: Gauged | None, began: float) -> Solution:
-    times = {"total": time.perf_counter() - began}
+    solved_at = time.perf_counter()
     diagnosis = diagnose(pursuit)
+    times = {"solve": solved_at - began}
     if not pursuit.solved:
-        verdict = _EARLY.get(pursuit.end)
         nearest = None if pursuit.nearest is None or gauged is not None else curve(pursuit.nearest)
-        return Solution(verdict, curve=nearest, diagnosis=diagnosis, meshes=tuple(pursuit.steps),
+        return Solution(EARLY.get(pursuit.end), curve=nearest, diagnosis=diagnosis, meshes=tuple(pursuit.steps),
                         iterations=pursuit.iterations, times=times)  # fmt: skip
     path = pursuit.paths[-1]
     names = {p.name for p in problem.parameters}
     parameters = {p.name: float(v) for p, v in zip(pursuit.problem.parameters, path.parameters, strict=True)
                   if p.name in names}  # fmt: skip
     value, value_error = path.value, pursuit.value_error
-    shape, multipliers = curve(path), costate_curve(path)
+    value_error_or_none = value_error if np.isfinite(value_error) else None
+    curve_error = pursuit.curve_error if np.isfinite(pursuit.curve_error) else None
+    made = checks.run(path, original=problem, value_error=value_error_or_none, curve_error=curve_error)
+    end = SearchEnd.CONVERGED if pursuit.end in (End.CONVERGED, End.SETTLED) else SearchEnd.LIMIT
+    verdict = judge(problem.seek, made, end)
+    shape, multipliers, bought = curve(path), costate_curve(path), prices(path)
     if gauged is not None:
-        shape, multipliers = _as_graph(problem, gauged, shape, multipliers, value)
+        root = float(np.sqrt(value)) if gauged.squared else 1.0
+        factor = 1 / (2 * root) if gauged.squared else 1.0
+        made = checks_on_graph(gauged, shape, made)
+        bought = prices_of_original(bought, factor)
+        shape, multipliers = as_graph(gauged, shape, multipliers, factor)
         if gauged.squared:
-            value, value_error = float(np.sqrt(value)), value_error / (2 * float(np.sqrt(value)))
+            value, value_error_or_none = root, value_error * factor if value_error_or_none is not None else None
     return Solution(
-        verdict=None,
+        verdict=verdict,
         value=value,
-        value_error=value_error if np.isfinite(value_error) else None,
+        value_error=value_error_or_none,
         parameters=parameters,
         curve=shape,
-        curve_error=pursuit.curve_error,
+        curve_error=curve_error,
         costates=multipliers,
+        prices=bought,
+        checks=made,
+        diagnosis=diagnosis,
         meshes=tuple(pursuit.steps),
         iterations=pursuit.iterations,
-        diagnosis=diagnosis,
-        times={"total": time.perf_counter() - began},
-        notes=(
-            pursuit.end.value,
-            pursuit.last[1].status if pursuit.last else "",
-            "gauge" if gauged else "",
-        ),
+        times=times | {"checks": time.perf_counter() - solved_at},
+        notes=tuple(_notes(problem, pursuit, gauged)),
     )
 
 
-def _as_graph(problem: Problem, gauged: Gauged, shape: Curve, multipliers: Curve, value: float) -> tuple[Curve, Curve]:
-    """Curve and costates as functions of the problem's own independent variable."""
-    x = problem.independent
-    factor = 1 / (2 * float(np.sqrt(value))) if gauged.squared else 1.0
-    functions: dict[str, Callable[[Array], Array]] = {}
-    for unknown in problem.unknowns:
-        functions[unknown.name] = partial(shape.evaluate, unknown.name)
-        functions[unknown.name + "'"] = partial(_slope, shape, x, unknown.name)
-    names = {unknown.name for unknown in problem.unknowns}
-    costates = {name: partial(_scaled, multipliers, name, factor) for name in multipliers.functions if name in names}
-    leading = problem.unknowns[0].name
-    wanted = functions | {f"costate {name}": function for name, function in costates.items()}
-    graph = regraph(shape.breaks, partial(shape.evaluate, x), wanted, leading)
-    return (
-        Curve(graph.breaks, {name: graph.functions[name] for name in functions}),
-        Curve(graph.breaks, {name: graph.functions[f"costate {name}"] for name in costates}),
-    )
-
-
-def _slope(shape: Curve, x: str, name: str, at: Array) -> Array:
-    return shape.evaluate(name + "'", at) / np.maximum(shape.evaluate(x + "'", at), 1e-300)
-
-
-def _scaled(curve_: Curve, name: str, factor: float, at: Array) -> Array:
-    return factor * curve_.evaluate(name, at)
+def _notes(problem: Problem, pursuit: Pursuit, gauged: Gauged | None) -> list[str]:
+    """What was done to the problem that its reader should know."""
+    notes = []
+    if gauged is not None:
+        speed = "in which the cost grows evenly" if gauged.squared else "at constant speed"
+        notes.append(f"The integrand grows linearly with the slope: the curve was found in parametric form, {speed}.")
+    found = present_switches(pursuit.paths[-1])
+    if found:
+        unit = f" {problem.independent_unit.text}" if problem.independent_unit.text else ""
+        listed = ", ".join(f"{switch.place / problem.independent_unit.factor:.9g}" for switch in found)
+        notes.append(f"Switches were found and made unknowns of the problem: {problem.independent} = {listed}{unit}.")
+    if pursuit.end is End.SETTLED:
+        notes.append("The value stands still to the tolerance; the curve may be less exact than the value.")
+    return notes

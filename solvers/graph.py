@@ -1,0 +1,56 @@
+"""A result that was found in parametric form, told as functions of the problem's own independent variable."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import replace
+from functools import partial
+
+import numpy as np
+from numpy.typing import NDArray
+
+from solvers.curve import Curve
+from solvers.gauge import Gauged
+from solvers.regraph import regraph
+from solvers.solution import Check, Price
+
+Array = NDArray[np.float64]
+
+
+def as_graph(gauged: Gauged, shape: Curve, multipliers: Curve, factor: float) -> tuple[Curve, Curve]:
+    """Curve and costates as functions of x; `factor` turns costates of the gauged problem into the original's."""
+    x = gauged.original.independent
+    functions: dict[str, Callable[[Array], Array]] = {}
+    names = [unknown.name for unknown in gauged.original.unknowns]
+    for name in names:
+        functions[name] = partial(shape.evaluate, name)
+        functions[name + "'"] = partial(_slope, shape, x, name)
+    costates = {name: partial(_scaled, multipliers, name, factor) for name in names if name in multipliers.functions}
+    wanted = functions | {f"costate {name}": function for name, function in costates.items()}
+    graph = regraph(shape.breaks, partial(shape.evaluate, x), wanted, names[0])
+    return (
+        Curve(graph.breaks, {name: graph.functions[name] for name in functions}),
+        Curve(graph.breaks, {name: graph.functions[f"costate {name}"] for name in costates}),
+    )
+
+
+def _slope(shape: Curve, x: str, name: str, at: Array) -> Array:
+    return shape.evaluate(name + "'", at) / np.maximum(shape.evaluate(x + "'", at), 1e-300)
+
+
+def _scaled(curve: Curve, name: str, factor: float, at: Array) -> Array:
+    return factor * curve.evaluate(name, at)
+
+
+def checks_on_graph(gauged: Gauged, shape: Curve, checks: tuple[Check, ...]) -> tuple[Check, ...]:
+    """The checks with their places on the problem's own independent variable."""
+    x = gauged.original.independent
+    return tuple(
+        check if check.place is None else replace(check, place=float(shape.evaluate(x, np.array([check.place]))[0]))
+        for check in checks
+    )
+
+
+def prices_of_original(prices: tuple[Price, ...], factor: float) -> tuple[Price, ...]:
+    """The prices of the conditions that the user gave, per unit of the original value."""
+    return tuple(replace(price, price=factor * price.price) for price in prices if price.pointer)
