@@ -28,18 +28,18 @@ class Application(FastAPI):
         return SecurityHeaders(super().build_middleware_stack())
 
 
-def create_app(settings: Settings) -> FastAPI:
-    """The application for these settings; its database and its workers begin with its lifespan."""
-
-    metrics = Metrics()
+def create_app(settings: Settings, services: Services | None = None) -> FastAPI:
+    """The application for these settings; what it needs starts and ends with its lifespan, or is `services`."""
+    metrics = services.metrics if services else Metrics()
 
     @asynccontextmanager
     async def lifespan(app: FastAPI) -> AsyncIterator[None]:
-        app.state.services = await run_in_threadpool(Services.start, settings, metrics)
+        started: Services = services or await run_in_threadpool(Services.start, settings, metrics)
+        app.state.services = started
         try:
             yield
         finally:
-            await run_in_threadpool(app.state.services.close)
+            await run_in_threadpool(started.close)
 
     app = Application(
         title="Curvewright",

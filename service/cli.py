@@ -48,7 +48,8 @@ def serve(host: str | None, port: int | None, data: Path | None, workers: int | 
     """
     from pydantic import ValidationError
 
-    from service.serve import run
+    from service.run import StoreError
+    from service.serve import ListenError, run
     from service.settings import Settings
 
     given = {"host": host, "port": port, "data": data, "workers": workers, "open": open_}
@@ -64,7 +65,12 @@ def serve(host: str | None, port: int | None, data: Path | None, workers: int | 
         )
     if not settings.loopback:
         click.echo(f"Warning: open to every machine that reaches {settings.host}; there are no keys.", err=True)
-    run(settings, announce=lambda address: click.echo(f"Curvewright serves at {address} (stop with Ctrl-C)"))
+    try:
+        run(settings, announce=lambda address: click.echo(f"Curvewright serves at {address} (stop with Ctrl-C)"))
+    except (ListenError, StoreError) as error:
+        raise click.ClickException(str(error)) from None
+    except KeyboardInterrupt:
+        click.echo("Stopped.", err=True)
 
 
 @main.command()

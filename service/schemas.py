@@ -153,6 +153,98 @@ class Provenance(Part):
     meshes: list[MeshOfHistory]
 
 
+class IndependentRead(Part):
+    """The independent variable and its ends, as formulas."""
+
+    name: str
+    unit: str
+    start: str = Field(alias="from")
+    end: str = Field(alias="to")
+
+
+class UnknownRead(Part):
+    """What became of an unknown function."""
+
+    name: str
+    order: int = Field(description="highest derivative anywhere")
+    unit: str
+    role: Literal["state", "control"]
+    free: bool = Field(description="nothing gives its highest derivative: it is chosen")
+    sentence: str
+
+
+class ConstantRead(Part):
+    """A constant in its own unit."""
+
+    name: str
+    value: float
+    unit: str
+    tolerance: float | None
+
+
+class ParameterRead(Part):
+    """An unknown number."""
+
+    name: str
+    unit: str
+
+
+class FunctionalRead(Part):
+    """What is sought."""
+
+    sentence: str
+    mathml: str
+    unit: str
+
+
+class RelationRead(Part):
+    """One relation as mathematics."""
+
+    pointer: str
+    kind: Literal["pointwise", "integral", "endpoint", "dynamics", "abbreviation", "parameter"]
+    mathml: str
+    unit: str
+
+
+class NecessaryCondition(Part):
+    """One condition that the optimum satisfies."""
+
+    kind: Literal[
+        "Lagrangian",
+        "Hamiltonian",
+        "Euler-Lagrange",
+        "costate",
+        "stationarity",
+        "natural boundary",
+        "first integral",
+    ]
+    subject: str = Field(alias="for")
+    mathml: str
+    text: str
+
+
+class Freedom(Part):
+    """How much there is to choose, and how much is fixed."""
+
+    unknown_functions: int
+    conditions: int
+    sentence: str
+
+
+class ReadingDocument(Part):
+    """How the problem was understood."""
+
+    independent: IndependentRead
+    unknowns: list[UnknownRead]
+    parameters: list[ParameterRead]
+    constants: list[ConstantRead]
+    functional: FunctionalRead
+    relations: list[RelationRead]
+    necessary: list[NecessaryCondition] | None = Field(default=None, description="only where it was asked for")
+    freedom: Freedom
+    notes: list[str]
+
+
 class ResultDocument(Part):
     """What a run leaves behind; all numbers in the user's units, null where there is no finite number."""
 
@@ -172,7 +264,7 @@ class ResultDocument(Part):
     slopes: list[dict[str, Any]]
     diagnosis: DiagnosisDocument | None
     notes: list[str]
-    reading: dict[str, Any] = Field(description="how the problem was understood")
+    reading: ReadingDocument
     provenance: Provenance
 
 
@@ -234,19 +326,6 @@ class ProblemDetails(Part):
     detail: str
     stage: str | None = None
     complaints: list[Complaint] | None = None
-
-
-class ReadingDocument(Part):
-    """How the problem was understood."""
-
-    independent: dict[str, Any]
-    unknowns: list[dict[str, Any]]
-    parameters: list[dict[str, Any]]
-    constants: list[dict[str, Any]]
-    functional: dict[str, Any]
-    relations: list[dict[str, Any]]
-    freedom: dict[str, Any]
-    notes: list[str]
 
 
 class Readiness(Part):

@@ -1,52 +1,72 @@
-"""Runs the application in this process until a signal ends it."""
+"""Runs the application in this process until a signal ends it.
+
+The workers are started first: they load the solver while this process loads the framework.
+"""
 
 from __future__ import annotations
 
 import socket
 from collections.abc import Callable
 
-import uvicorn
-
-from service.app import create_app
+from service.services import Services
 from service.settings import Settings
 
-SHUTDOWN_SECONDS = 5
+SHUTDOWN_SECONDS = 3
 
 
-class _Server(uvicorn.Server):
-    """Tells the address once requests are answered."""
-
-    def __init__(self, config: uvicorn.Config, announce: Callable[[], None]) -> None:
-        super().__init__(config)
-        self._announce = announce
-
-    async def startup(self, sockets: list[socket.socket] | None = None) -> None:
-        await super().startup(sockets)
-        if self.started:
-            self._announce()
+class ListenError(Exception):
+    """The address cannot be listened on."""
 
 
 def run(settings: Settings, announce: Callable[[str], None]) -> None:
-    """Serve until SIGINT or SIGTERM; `announce` gets the address, with the port that port 0 led to."""
-    listener = _listener(settings)
-    host, port = listener.getsockname()[:2]
-    address = f"http://{f'[{host}]' if ':' in host else host}:{port}"
+    """Serve until SIGINT or SIGTERM; `announce` gets the address, with the port that port 0 led to.
+
+    Raises ListenError, and StoreError where the data directory or the database cannot be used.
+    """
+    with _listener(settings) as listener:
+        services = Services.start(settings)
+        try:
+            _serve(listener, services, announce)
+        finally:
+            services.close()
+
+
+def _serve(listener: socket.socket, services: Services, announce: Callable[[str], None]) -> None:
+    import uvicorn
+
+    from service.app import create_app
+
+    class Server(uvicorn.Server):
+        """Tells the address once requests are answered."""
+
+        async def startup(self, sockets: list[socket.socket] | None = None) -> None:
+            await super().startup(sockets)
+            if self.started:
+                announce(_address(listener))
+
     config = uvicorn.Config(
-        create_app(settings),
+        create_app(services.settings, services),
         access_log=False,
         server_header=False,
         lifespan="on",
-        timeout_graceful_shutdown=SHUTDOWN_SECONDS,
         log_level="warning",
+        timeout_graceful_shutdown=SHUTDOWN_SECONDS,
     )
-    with listener:
-        _Server(config, lambda: announce(address)).run(sockets=[listener])
+    Server(config).run(sockets=[listener])
 
 
 def _listener(settings: Settings) -> socket.socket:
     family = socket.AF_INET6 if ":" in settings.host else socket.AF_INET
     listener = socket.socket(family, socket.SOCK_STREAM)
-    listener.setsockopt(socket.SOL_SOCKET, socket.SO_REUSEADDR, 1)
-    listener.bind((settings.host, settings.port))
-    listener.set_inheritable(False)
+    try:
+        listener.setsockopt(socket.SOL_SOCKET, socket.SO_REUSEADDR, 1)
+        listener.bind((settings.host, settings.port))
+    except OSError as error:
+        listener.close()
+        raise ListenError(f"{settings.host} port {settings.port} cannot be used: {error.strerror}") from None
     return listener
+
+
+def _address(listener: socket.socket) -> str:
+    host, port = listener.getsockname()[:2]
+    return f"http://{f'[{host}]' if ':' in host else host}:{port}"

@@ -23,10 +23,10 @@ class Services:
     metrics: Metrics
 
     @classmethod
-    def start(cls, settings: Settings, metrics: Metrics) -> Services:
+    def start(cls, settings: Settings, metrics: Metrics | None = None) -> Services:
         """Open the database and begin to solve; raises what the store and the dispatcher raise."""
         store = Store(settings.database_url)
-        services = cls(settings, store, Dispatcher(store, settings), metrics)
+        services = cls(settings, store, Dispatcher(store, settings), metrics or Metrics())
         services.metrics.watch("runs", "Runs in each state", "state", services._runs)
         services.metrics.watch("slots", "Slots for runs", "kind", services._slots)
         try:

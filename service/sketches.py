@@ -40,7 +40,7 @@ def drawn(name: str, result: Mapping[str, Any]) -> list[list[list[float]]]:
     arc = trajectory.arcs[0]
     lines = []
     for unknown in _DRAWN.get(name, trajectory.names[:1]):
-        values = trajectory.evaluate(arc, unknown, 0, places)
+        values = arc.evaluate(unknown, 0, places)
         lines.append([[_short(x), _short(y)] for x, y in zip(places, values, strict=True)])
     return lines
 

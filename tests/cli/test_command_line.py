@@ -1,0 +1,207 @@
+"""The real command in a process of its own; only what it prints, writes and returns is looked at."""
+
+import csv
+import json
+import re
+import signal
+import socket
+import subprocess
+import sys
+import time
+
+import openpyxl
+import pytest
+
+from service import samples
+
+LINE = {
+    "format": 1,
+    "title": "Line between two pegs",
+    "independent": {"name": "x", "unit": "m", "from": 0, "to": 3},
+    "unknowns": {"y": {"unit": "m"}},
+    "functional": {"seek": "minimum", "integrand": "y'^2"},
+    "endpoints": ["y(0) = 0", "y(3) = 2"],
+}
+VALUE = 4 / 3  # the straight line: (2/3)^2 * 3
+
+
+def _run(*arguments, stdin="", **options):
+    command = [sys.executable, "-m", "service", *map(str, arguments)]
+    return subprocess.run(command, input=stdin, capture_output=True, text=True, timeout=120, check=False, **options)
+
+
+@pytest.fixture(scope="module")
+def solved():
+    """`solve --json` of the line from standard input."""
+    return _run("solve", "-", "--json", stdin=json.dumps(LINE))
+
+
+def test_json_is_the_result_document_and_nothing_else(solved):
+    assert solved.returncode == 0
+    assert solved.stderr == ""
+    result = json.loads(solved.stdout)
+    assert result["verdict"] in ("global minimum", "local minimum")
+    assert result["value"] == pytest.approx(VALUE, abs=max(result["value_error"], 1e-12))
+    assert result["problem"] == LINE
+    assert result["id"] is None
+    assert result["reading"]["necessary"]
+
+
+def test_the_summary_says_what_matters_and_a_table_is_written(tmp_path):
+    file = tmp_path / "line.json"
+    file.write_text(json.dumps(LINE))
+    done = _run("solve", file, "--table", tmp_path / "line.csv", "--step", "0.7", "--derivatives", "1")
+    assert done.returncode == 0
+    assert done.stdout.splitlines()[0] == LINE["title"]
+    assert re.search(r"verdict\s+(global|local) minimum", done.stdout)
+    assert re.search(r"value\s+1\.3333\d* ± \S+\s+?m\n", done.stdout)
+    assert re.search(r"passed\s+motion\s+\S+ \(at most \S+\)", done.stdout)
+    assert (
+        "The result holds for the stated model only" in done.stdout or "holds for the stated model only" in done.stdout
+    )
+    heading, *rows = csv.reader((tmp_path / "line.csv").open())
+    assert heading == ["x [m]", "y [m]", "y'"]
+    assert float(rows[-1][0]) == 3
+    assert float(rows[-1][1]) == pytest.approx(2)
+
+
+def test_the_suffix_chooses_the_format(tmp_path):
+    done = _run("solve", "-", "--table", tmp_path / "line.xlsx", "--rows", "5", stdin=json.dumps(LINE))
+    assert done.returncode == 0
+    sheet = openpyxl.load_workbook(tmp_path / "line.xlsx").worksheets[0]
+    assert sheet.max_row == 6
+
+
+def test_a_weaker_verdict_is_told_by_the_exit_code():
+    document = {**LINE, "constraints": ["integral(sqrt(1 + y'^2)) <= 3.2"]}  # the chord alone is 3.6 m
+    done = _run("solve", "-", stdin=json.dumps(document))
+    assert done.returncode == 1
+    assert re.search(r"verdict\s+infeasible", done.stdout)
+    assert "integral(sqrt(1 + y'^2)) <= 3.2" in done.stdout
+
+
+def test_a_refused_document_is_printed_with_a_marker_under_the_place():
+    document = {**LINE, "constraints": ["y <= h + 1"], "where": {"a": "b"}}
+    for command in ("solve", "check"):
+        done = _run(command, "-", stdin=json.dumps(document))
+        assert done.returncode == 2
+        assert done.stdout == ""
+        blocks = done.stderr.split("\n\n")
+        assert blocks[0] == "The document is refused (names): 2 complaints."
+        block = next(block for block in blocks if block.startswith("/constraints/0: "))
+        lines = block.splitlines()
+        assert lines[1] == "    y <= h + 1"
+        assert lines[2] == "         ^"
+        assert lines[3].strip()
+
+
+def test_broken_json_is_marked_in_its_line():
+    done = _run("check", "-", stdin='{\n  "format": 1,\n  "title": oops\n}')
+    assert done.returncode == 2
+    assert '      "title": oops\n               ^' in done.stderr
+
+
+def test_check_reads_back():
+    done = _run("check", "-", stdin=json.dumps(LINE))
+    assert done.returncode == 0
+    assert "x from 0 to 3 [m]" in done.stdout
+    reading = json.loads(_run("check", "-", "--json", stdin=json.dumps(LINE)).stdout)
+    assert reading["unknowns"][0]["name"] == "y"
+
+
+def test_samples_are_listed_and_can_stand_for_a_file():
+    listed = _run("samples").stdout
+    assert [line.split()[0] for line in listed.splitlines()] == list(samples.names())
+    done = _run("check", "hose")
+    assert done.returncode == 0
+    assert done.stdout.startswith(samples.load("hose")["title"])
+
+
+@pytest.mark.parametrize(
+    ("arguments", "said"),
+    [
+        (("solve", "nowhere.json"), "no file 'nowhere.json'"),
+        (("solve", "hose", "--rows", "5"), "--table"),
+        (("solve", "hose", "--table", "a.csv", "--rows", "5", "--step", "1"), "not both"),
+        (("solve", "hose", "--table", "a.pdf"), ".csv, .json, .xlsx, .npz"),
+        (("serve", "--host", "0.0.0.0"), "--open"),
+        (("serve", "--port", "99999"), "--port"),
+        (("dance",), "dance"),
+    ],
+)
+def test_a_call_that_cannot_be_meant_is_refused(arguments, said):
+    done = _run(*arguments)
+    assert done.returncode == 2
+    assert said in done.stderr
+    assert "Traceback" not in done.stderr
+
+
+def test_a_refused_host_says_why():
+    said = _run("serve", "--host", "0.0.0.0").stderr
+    assert "no keys" in said
+
+
+def test_the_help_names_every_command():
+    said = _run("--help").stdout
+    for command in ("serve", "solve", "check", "samples"):
+        assert f"  {command}" in said
+
+
+def test_interrupting_keeps_the_best_curve_so_far():
+    document = samples.load("crucible")
+    document["solve"] = {"tolerance": 1e-11, "time_limit": 100, "points": 200_000}
+    with subprocess.Popen(
+        [sys.executable, "-m", "service", "solve", "-", "--json"],
+        stdin=subprocess.PIPE,
+        stdout=subprocess.PIPE,
+        stderr=subprocess.PIPE,
+        text=True,
+    ) as process:
+        process.stdin.write(json.dumps(document))
+        process.stdin.close()
+        process.stdin = None
+        time.sleep(6)
+        process.send_signal(signal.SIGINT)
+        output, errors = process.communicate(timeout=60)
+    assert process.returncode == 1, errors
+    result = json.loads(output)
+    assert result["state"] == "stopped"
+    assert result["diagnosis"]["reason"] == "stopped"
+
+
+def test_a_taken_port_is_told_plainly(tmp_path):
+    with socket.socket() as other:
+        other.bind(("127.0.0.1", 0))
+        other.listen()
+        port = other.getsockname()[1]
+        done = _run("serve", "--port", port, "--data", tmp_path / "data")
+    assert done.returncode == 1
+    assert done.stderr == f"Error: 127.0.0.1 port {port} cannot be used: Address already in use\n"
+
+
+def test_a_taken_or_impossible_directory_is_told_plainly(tmp_path):
+    with _serving("--port", "0", "--data", tmp_path / "data") as first:
+        assert "serves at" in first.stdout.readline()
+        done = _run("serve", "--port", "0", "--data", tmp_path / "data")
+        first.send_signal(signal.SIGINT)
+        assert first.communicate(timeout=30)[1] == "Stopped.\n"
+    assert done.returncode == 1
+    assert done.stderr.startswith("Error: another server works in")
+    assert "Traceback" not in done.stderr
+    (tmp_path / "file").touch()
+    done = _run("serve", "--port", "0", "--data", tmp_path / "file" / "data")
+    assert done.returncode == 1
+    assert "cannot be made" in done.stderr
+    assert "Traceback" not in done.stderr
+
+
+def test_an_open_server_warns(tmp_path):
+    with _serving("--host", "0.0.0.0", "--open", "--port", "0", "--data", tmp_path / "data") as process:
+        assert "Curvewright serves at http://0.0.0.0:" in process.stdout.readline()
+        process.terminate()
+        assert "there are no keys" in process.communicate(timeout=30)[1]
+
+
+def _serving(*options):
+    command = [sys.executable, "-m", "service", "serve", "--workers", "1", *map(str, options)]
+    return subprocess.Popen(command, stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True)
