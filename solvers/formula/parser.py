@@ -4,7 +4,19 @@ from __future__ import annotations
 
 from solvers.formula.errors import FormulaError
 from solvers.formula.nodes import (
-    FUNCTIONS, At, Call, Name, Negative, Node, Number, Power, Product, Relation, Span, Sum, walk,
+    FUNCTIONS,
+    At,
+    Call,
+    Name,
+    Negative,
+    Node,
+    Number,
+    Power,
+    Product,
+    Relation,
+    Span,
+    Sum,
+    walk,
 )  # fmt: skip
 from solvers.formula.tokens import Token, tokens
 
@@ -21,12 +33,12 @@ ENDLESS = ("min", "max")
 
 def parse_expression(text: str) -> Node:
     """The tree of a formula without a sign of relation.  Raises FormulaError."""
-    tree = parse_either(text)
+    parser = _Parser(text)
+    tree = parser.either()
     if isinstance(tree, Relation):
-        between = Span(tree.sides[0].span.end, tree.sides[1].span.start)
         raise FormulaError(
             f"an expression is expected here, not a relation with '{tree.signs[0]}'",
-            text=text, span=_trimmed(text, between), code="relation-unexpected", hint="give the expression alone",
+            text=text, span=parser.signs[0].span, code="relation-unexpected", hint="give the expression alone",
         )  # fmt: skip
     return tree
 
@@ -47,20 +59,13 @@ def parse_either(text: str) -> Node | Relation:
     return _Parser(text).either()
 
 
-def _trimmed(text: str, span: Span) -> Span:
-    """Without the spaces and parentheses around the sign of relation."""
-    inside = text[span.start : span.end]
-    start = next(i for i, c in enumerate(inside) if c in "=<>≤≥")
-    length = 2 if inside[start] in "<>" else 1
-    return Span(span.start + start, span.start + start + length)
-
-
 class _Parser:
     def __init__(self, text: str) -> None:
         self.text = text
         self.tokens = tokens(text)
         self.place = 0
         self.depth = 0
+        self.signs: list[Token] = []
 
     # ---- the grammar ----
 
@@ -70,21 +75,22 @@ class _Parser:
             raise self.error("the formula is empty", self.next.span, "expected-value")
         start = self.next.span.start
         sides = [self.sum()]
-        signs: list[str] = []
         while self.next.text in SIGNS:
             sign = self.take()
-            if {sign.text, *signs} >= {"<=", ">="}:
+            self.signs.append(sign)
+            if {known.text for known in self.signs} >= {"<=", ">="}:
                 raise self.error(
                     "a chain runs in one direction",
                     sign.span,
                     "relation-chain",
                     "write two relations, or turn one sign round",
                 )
-            signs.append(sign.text)
             sides.append(self.sum())
         if self.next.kind != "end":
             raise self.leftover()
-        return Relation(tuple(sides), tuple(signs), self.since(start)) if signs else sides[0]
+        if not self.signs:
+            return sides[0]
+        return Relation(tuple(sides), tuple(sign.text for sign in self.signs), self.since(start))
 
     def sum(self) -> Node:
         """sum = signed (('+' | '-') signed)*"""
