@@ -177,7 +177,8 @@ def _in_pint(name: str) -> tuple[float, Dimension] | None:
     if offset:
         hint = "use K for temperatures, plain ratios for levels"
         raise UnitTextError(f"the scale “{name}” does not start at zero", hint)
-    powers.pop("radian", None)
+    for pure in ("radian", "count"):
+        powers.pop(pure, None)
     if not set(powers) <= set(_PINT_BASE) or not factor > 0:
         return None
     dimension = list(PURE)

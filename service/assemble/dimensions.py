@@ -25,13 +25,15 @@ class Sort:
     """What is known of the unit of an expression.
 
     `measure` is its unit where names without a unit count as pure numbers; `checked` says that there are none;
-    `bare` that it is made of numbers and of constants without unit only; `zero` that it is a literal 0.
+    `bare` that it is made of numbers and of constants without unit only; `zero` that it is a literal 0; `mixed` that
+    it adds mm to m or the like, so that nobody can tell which of them a bare number beside it would be in.
     """
 
     measure: Measure = ONE
     checked: bool = True
     bare: bool = False
     zero: bool = False
+    mixed: bool = False
 
     @property
     def told(self) -> str:
@@ -98,7 +100,8 @@ class Units:
             part = self.sort(factor, formula)
             measure = total.measure.times(part.measure, Fraction(-1 if over else 1))
             zero = total.zero or (part.zero and not over)
-            total = Sort(measure, total.checked and part.checked, total.bare and part.bare, zero)
+            mixed = total.mixed or part.mixed
+            total = Sort(measure, total.checked and part.checked, total.bare and part.bare, zero, mixed)
         return total
 
     def power(self, node: Power, formula: Formula) -> Sort:
@@ -118,7 +121,8 @@ class Units:
             return UNCHECKED
         if abs(value) > 100:
             return Sort(ONE, checked=False)
-        return Sort(base.measure.power(Fraction(value).limit_denominator(1000)), base.checked, bare)
+        measure = base.measure.power(Fraction(value).limit_denominator(1000))
+        return Sort(measure, base.checked, bare, mixed=base.mixed)
 
     def call(self, node: Call, formula: Formula) -> Sort:
         if node.function in ALIKE:
@@ -130,12 +134,12 @@ class Units:
             return Sort(ONE, sort.checked, sort.bare)
         match node.function:
             case "sqrt":
-                return Sort(sort.measure.power(Fraction(1, 2)), sort.checked, sort.bare, sort.zero)
+                return replace(sort, measure=sort.measure.power(Fraction(1, 2)))
             case "sign":
                 return Sort(ONE, sort.checked, sort.bare)
             case "integral":
                 by = self.sorts[self.independent]
-                return Sort(sort.measure.times(by.measure), sort.checked and by.checked)
+                return Sort(sort.measure.times(by.measure), sort.checked and by.checked, mixed=sort.mixed)
         return sort  # abs
 
     def alike(self, nodes: Sequence[Node], formula: Formula) -> Sort:
@@ -148,7 +152,15 @@ class Units:
             if index != leading and not sort.zero:
                 clashed |= self.compare((nodes[leading], lead), (node, sort), formula)
         checked = all(sort.checked for sort in sorts) and not clashed
-        return Sort(lead.measure, checked, all(sort.bare for sort in sorts), all(sort.zero for sort in sorts))
+        bare, zero = all(sort.bare for sort in sorts), all(sort.zero for sort in sorts)
+        told = [sort for sort in sorts if not sort.zero]
+        if lead.measure.dimension == PURE and any(sort.bare for sort in told):
+            return Sort(ONE, checked, bare, zero)  # 1 + y'^2 is a pure number whatever y' is in
+        factors = [sort.measure.factor for sort in told]
+        mixed = any(sort.mixed for sort in told) or (
+            bool(factors) and not math.isclose(min(factors), max(factors), rel_tol=1e-12)
+        )
+        return Sort(lead.measure, checked, bare, zero, mixed)
 
     def compare(self, lead: tuple[Node, Sort], other: tuple[Node, Sort], formula: Formula) -> bool:
         """Complain (and return True) where two parts cannot be added or compared."""

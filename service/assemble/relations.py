@@ -52,10 +52,10 @@ def convert(statement: Statement, units: Units) -> Sides:
 def scaled(node: Node, lead: Sort, formula: Formula, units: Units) -> Node:
     """A side of numbers (and constants without unit) in the unit of the leading side, converted to SI."""
     measure = lead.measure
-    if measure.factor == 1:
+    if measure.factor == 1 and not lead.mixed:
         return node
-    if measure.ambiguous:
-        message = f"The number {quoted(node)} would be in {measure.text}, the unit of the other side: hardly meant."
+    if measure.ambiguous or lead.mixed:
+        message = f"In which unit {quoted(node)} is cannot be told: the other side mixes several of a kind."
         unit = measure.text if measure.dimension == PURE else measure.coherent.text
         hint = f'Give it a unit: a constant such as "c": "{text(node)[:20]} {unit}".'
         units.complaints.append(formula.complaint(node.span, "bare-number", message, hint))
