@@ -280,7 +280,7 @@ def _with_derivatives(
 
 def _column(matrix: ca.SX) -> ca.SX:
     """The nonzeros of a matrix as one column."""
-    return matrix[matrix.sparsity().find()] if matrix.nnz() else ca.SX(0, 1)
+    return ca.vec(matrix[matrix.sparsity().find()]) if matrix.nnz() else ca.SX(0, 1)
 
 
 def _places(sparsity: ca.Sparsity) -> tuple[list[int], list[int]]:

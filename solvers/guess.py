@@ -2,38 +2,31 @@
 
 A line is all that the endpoint conditions say.  Where it is undefined (an integrand that is infinite on it) or breaks a
 constraint or an integral condition (a hose longer than the distance), a bend of low order is added to the unknowns,
-with the sign and the size that violate least.  What the user gives as a guess is kept as it is.
+with the sign and the size that violate least.  Parameters of unknown size get the power of ten at which the dynamics
+fit the lines best.  What the user gives as a guess is kept as it is.
 """
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import dataclass
-from typing import Any
 
 import numpy as np
-from numpy.polynomial import polynomial
 from numpy.typing import NDArray
 
-from solvers.formula.evaluate import evaluate
-from solvers.formula.nodes import Node
 from solvers.functions import Compiled
-from solvers.limits import constants_of, interval_of, number, quantity_bounds
-from solvers.problem import Problem, Unknown
+from solvers.limits import constants_of, interval_of, number
+from solvers.mesh import Mesh
+from solvers.problem import Parameter, Problem
+from solvers.sketch import Bend, sketch
 from solvers.transcription import Layout
 
 Array = NDArray[np.float64]
 
-BENDS = (0.1, -0.1, 0.3, -0.3, 1.0, -1.0)
-"""Sizes of the bends that are tried, relative to the size of the unknown or to the range."""
+BENDS = (*(Bend(size) for size in (0.1, -0.1, 0.3, -0.3, 1.0, -1.0)), Bend(0.3, 2), Bend(1.0, 2))
+"""Bends that are tried."""
 
-ARRAYS: dict[str, Callable[..., Any]] = {
-    "sqrt": np.sqrt, "exp": np.exp, "log": np.log, "sin": np.sin, "cos": np.cos, "tan": np.tan,
-    "asin": np.arcsin, "acos": np.arccos, "atan": np.arctan, "atan2": np.arctan2, "sinh": np.sinh, "cosh": np.cosh,
-    "tanh": np.tanh, "abs": np.abs, "sign": np.sign, "hypot": np.hypot, "power": np.power,
-    "min": lambda *values: np.minimum.reduce(np.broadcast_arrays(*values)),
-    "max": lambda *values: np.maximum.reduce(np.broadcast_arrays(*values)),
-}  # fmt: skip
+POWERS = range(-8, 9)
+"""Powers of ten that are tried for parameters of unknown size."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -45,41 +38,46 @@ class Guess:
     bent: bool
 
 
-def guesses(compiled: Compiled, where: Layout, ends: Array | None = None) -> list[Guess]:
-    """Guesses on a mesh, best first.  `ends` overrides the values of the places."""
+def guesses(compiled: Compiled, mesh: Mesh, where: Layout) -> list[Guess]:
+    """Guesses on a mesh, best first."""
     problem = compiled.lowered.problem
-    constants = constants_of(compiled)
-    parameters = np.array([_parameter_guess(p.lower, p.upper, p.guess) for p in problem.parameters])
-    places = _places(problem, constants, parameters, where)
-    if ends is not None:
-        places = ends
+    parameters = np.array([_parameter(p) for p in problem.parameters])
+    places = _places(problem, constants_of(compiled), parameters, where)
     for index, place in zip(where.places, places, strict=True):
-        hit = np.flatnonzero(where.parameters == index)
-        parameters[hit] = place
-    plain = _assemble(compiled, where, places, parameters, 0.0)
-    found = [Guess(plain, _violation(compiled, where, plain), bent=False)]
+        parameters[where.parameters == index] = place
+    _size_parameters(compiled, mesh, where, places, parameters)
+    found = [_guess(compiled, mesh, where, places, parameters, Bend())]
     if found[0].violation > 1e-3:
-        for bend in BENDS:
-            z = _assemble(compiled, where, places, parameters, bend)
-            found.append(Guess(z, _violation(compiled, where, z), bent=True))
+        found += [_guess(compiled, mesh, where, places, parameters, bend) for bend in BENDS]
     # A bend must be clearly better than none.
     return sorted(found, key=lambda guess: guess.violation * (1.1 if guess.bent else 1.0))
 
 
-def _parameter_guess(lower: float, upper: float, given: float | None) -> float:
-    if given is not None:
-        return given
+def _guess(compiled: Compiled, mesh: Mesh, where: Layout, places: Array, parameters: Array, bend: Bend) -> Guess:
+    z = sketch(compiled, mesh, where, places, parameters, bend)
+    first = compiled.point.states + compiled.point.constraints
+    outputs = _outputs(compiled, where, z)
+    totals = where.measures @ outputs[:, first : first + compiled.point.integrals]
+    z[where.integrals] = np.where(np.isfinite(totals), totals, 0.0)
+    return Guess(z, _violation(compiled, where, z, outputs), bent=bend.size != 0)
+
+
+def _parameter(parameter: Parameter) -> float:
+    """A value inside the bounds, or the user's."""
+    lower, upper = parameter.lower, parameter.upper
+    if parameter.guess is not None:
+        return parameter.guess
     if np.isfinite(lower) and np.isfinite(upper):
         return float(np.sqrt(lower * upper)) if lower > 0 and upper > 20 * lower else (lower + upper) / 2
     if np.isfinite(lower):
-        return lower + max(1.0, abs(lower)) if lower != 0 else 1.0
+        return lower + max(1.0, abs(lower))
     if np.isfinite(upper):
-        return upper - max(1.0, abs(upper)) if upper != 0 else -1.0
+        return upper - max(1.0, abs(upper))
     return 1.0
 
 
 def _places(problem: Problem, constants: dict[str, float], parameters: Array, where: Layout) -> Array:
-    """Values of the places; free ones without bounds of their own are spread between their neighbours."""
+    """Values of the places; free ones without a guess are spread between their neighbours."""
     values = np.full(len(problem.places), np.nan)
     for index, place in enumerate(problem.places):
         hit = np.flatnonzero(where.parameters == where.places[index])
@@ -93,141 +91,39 @@ def _places(problem: Problem, constants: dict[str, float], parameters: Array, wh
     return np.asarray(np.interp(np.arange(len(values)), known, values[known]))
 
 
-def _assemble(compiled: Compiled, where: Layout, places: Array, parameters: Array, bend: float) -> Array:
-    """All variables for one bend."""
-    lowered = compiled.lowered
-    problem = lowered.problem
-    starts, ends = places[where.stretch], places[where.stretch + 1]
-    points = starts + where.fractions * (ends - starts)
-    nodes = _nodes(where, points, places)
-    z = np.zeros(where.size)
-    z[where.places], z[where.parameters] = places, parameters
-    known = _known_values(compiled)
-    constants = constants_of(compiled) | {p.name: v for p, v in zip(problem.parameters, parameters, strict=True)}
-    state_lower, state_upper, control_lower, control_upper = quantity_bounds(compiled)
-    for turn, unknown in enumerate(problem.unknowns):
-        at = np.concatenate([nodes, points])
-        middle = _middle(compiled, unknown, state_lower, state_upper, control_lower, control_upper)
-        values = _unknown(unknown, at, places, known, constants, problem.independent, bend, turn, middle)
-        for order in range(unknown.order + 1):
-            quantity = (unknown.name, order)
-            if quantity in lowered.states:
-                k = lowered.states.index(quantity)
-                clipped = np.clip(values[order], state_lower[k], state_upper[k])
-                z[where.inner[:, k]] = clipped[len(nodes) :]
-                z[where.nodes[:, k]] = clipped[: len(nodes)]
-            elif quantity in lowered.controls:
-                k = lowered.controls.index(quantity)
-                inside = np.clip(values[order][len(nodes) :], control_lower[k], control_upper[k])
-                z[where.controls[:, k]] = inside
-    z[where.integrals] = _integrals(compiled, where, z)
-    return z
+def _size_parameters(compiled: Compiled, mesh: Mesh, where: Layout, places: Array, parameters: Array) -> None:
+    """Give parameters that are open on a side and without a guess the size at which the dynamics fit the lines best."""
+    problem = compiled.lowered.problem
+    open_ended = np.array([
+        p.guess is None and not np.isfinite(p.upper - p.lower) and index not in where.places
+        and (p.lower == 0 or not np.isfinite(p.lower)) and (p.upper == 0 or not np.isfinite(p.upper))
+        for p, index in zip(problem.parameters, where.parameters, strict=True)
+    ], dtype=bool)  # fmt: skip
+    if not open_ended.any() or not problem.dynamics:
+        return
+    base = parameters.copy()
+    misfits = []
+    for power in POWERS:
+        parameters[open_ended] = base[open_ended] * 10.0**power
+        z = sketch(compiled, mesh, where, places, parameters, Bend())
+        misfits.append(_misfit(compiled, where, z))
+    least = min(misfits)
+    # The size nearest to one among those that fit as well as the best.
+    good = [power for power, misfit in zip(POWERS, misfits, strict=True) if misfit <= 1.1 * least]
+    parameters[open_ended] = base[open_ended] * 10.0 ** min(good, key=abs)
 
 
-def _nodes(where: Layout, points: Array, places: Array) -> Array:
-    """Places of the nodes: the stretch's own ends, and between them the ends of the intervals."""
-    count = len(where.first) - 1
-    nodes = np.empty(count + 1)
-    for k in range(count):
-        inside = slice(where.first[k], where.first[k + 1])
-        stretch = where.stretch[where.first[k]]
-        left = places[stretch] if k in where.at_place else nodes[k]
-        nodes[k] = left
-        width = where.measures[inside].sum() * (places[stretch + 1] - places[stretch])
-        nodes[k + 1] = left + width
-    nodes[where.at_place] = places
-    return nodes
+def _misfit(compiled: Compiled, where: Layout, z: Array) -> float:
+    """How much the rates differ from the slopes of the lines over the whole range, relative to the states' sizes."""
+    rates = _outputs(compiled, where, z)[:, : compiled.point.states]
+    slopes = z[where.nodes[-1]] - z[where.nodes[0]]
+    sizes = np.abs(z[where.nodes]).max(axis=0)
+    sizes = np.where(sizes > 0, sizes, max(float(sizes.max(initial=0.0)), 1e-300))
+    misfit = float(np.mean(np.abs(rates - slopes) / sizes)) if rates.size else 0.0
+    return misfit if np.isfinite(misfit) else np.inf
 
 
-def _known_values(compiled: Compiled) -> dict[tuple[str, int], list[tuple[int, float]]]:
-    """Values at places that conditions fix, or bound on one side, by quantity."""
-    constants = constants_of(compiled)
-    known: dict[tuple[str, int], list[tuple[int, float]]] = {}
-    for state, place, condition in compiled.fixed:
-        lower, upper = interval_of(condition, constants)
-        value = lower if np.isfinite(lower) else upper
-        if condition.equality or not (lower <= 0.0 <= upper):
-            known.setdefault(compiled.lowered.states[state], []).append((place, value))
-    return known
-
-
-def _middle(compiled: Compiled, unknown: Unknown, state_lower: Array, state_upper: Array, control_lower: Array,
-            control_upper: Array) -> float:  # fmt: skip
-    """A value inside the bounds of an unknown about which nothing else is known."""
-    lowered = compiled.lowered
-    quantity = (unknown.name, 0)
-    if quantity in lowered.states:
-        k = lowered.states.index(quantity)
-        lower, upper = state_lower[k], state_upper[k]
-    else:
-        k = lowered.controls.index(quantity)
-        lower, upper = control_lower[k], control_upper[k]
-    if np.isfinite(lower) and np.isfinite(upper):
-        return float((lower + upper) / 2)
-    if np.isfinite(lower):
-        return float(lower + max(1.0, abs(lower))) if lower >= 0 else 0.0
-    if np.isfinite(upper):
-        return float(upper - max(1.0, abs(upper))) if upper <= 0 else 0.0
-    return 0.0
-
-
-def _unknown(
-    unknown: Unknown,
-    at: Array,
-    places: Array,
-    known: dict[tuple[str, int], list[tuple[int, float]]],
-    constants: dict[str, float],
-    independent: str,
-    bend: float,
-    turn: int,
-    middle: float,
-) -> list[Array]:
-    """Values at `at` of an unknown and its derivatives, lowest first."""
-    grid, back = np.unique(at, return_inverse=True)
-    span = places[-1] - places[0]
-    if unknown.guess is not None:
-        rows = [_given(unknown.guess, grid, constants, independent)]
-        for _ in range(unknown.order):
-            rows.append(np.gradient(rows[-1], grid))
-        return [row[back] for row in rows]
-    line = _line(known.get((unknown.name, 0)), grid, places)
-    rows = [np.full_like(grid, middle) if line is None else line]
-    for order in range(1, unknown.order + 1):
-        line = _line(known.get((unknown.name, order)), grid, places)
-        slope = np.gradient(rows[0], grid) if order == 1 else np.zeros_like(grid)
-        rows.append(slope if line is None else line)
-    if bend and unknown.order:
-        size = float(np.abs(rows[0]).max()) or abs(span)
-        shape = polynomial.polypow([0.0, 4.0, -4.0], max(1, unknown.order // 2 + unknown.order % 2))
-        if turn % 2:
-            shape = polynomial.polymul(shape, [1.0, -2.0])
-        fraction = (grid - places[0]) / span
-        for order in range(unknown.order + 1):
-            rows[order] = rows[order] + bend * size * polynomial.polyval(fraction, shape) / span**order
-            shape = polynomial.polyder(shape)
-    return [row[back] for row in rows]
-
-
-def _given(guess: Node | tuple[tuple[float, float], ...], grid: Array, constants: dict[str, float],
-           independent: str) -> Array:  # fmt: skip
-    """The user's guess on a grid."""
-    if isinstance(guess, tuple):
-        places, values = np.array(guess).T
-        return np.asarray(np.interp(grid, places, values))
-    with np.errstate(all="ignore"):
-        value = evaluate(guess, lambda name, order: grid if name == independent else constants[name], ARRAYS)
-    return np.broadcast_to(np.asarray(value, dtype=float), grid.shape)
-
-
-def _line(known: list[tuple[int, float]] | None, at: Array, places: Array) -> Array | None:
-    """Straight lines through known values."""
-    if not known:
-        return None
-    ordered = sorted(known)
-    return np.asarray(np.interp(at, [places[index] for index, _ in ordered], [value for _, value in ordered]))
-
-
-def _point_values(compiled: Compiled, where: Layout, z: Array) -> Array:
+def _outputs(compiled: Compiled, where: Layout, z: Array) -> Array:
     """Outputs of the point function at every point (M x outputs)."""
     count = len(where.fractions)
     starts, ends = where.places[where.stretch], where.places[where.stretch + 1]
@@ -237,31 +133,23 @@ def _point_values(compiled: Compiled, where: Layout, z: Array) -> Array:
     return np.asarray(compiled.point.value.map(count)(v.T, d.T)).T
 
 
-def _integrals(compiled: Compiled, where: Layout, z: Array) -> Array:
-    point = compiled.point
-    outputs = _point_values(compiled, where, z)
-    first = point.states + point.constraints
-    totals = where.measures @ outputs[:, first : first + point.integrals]
-    return np.where(np.isfinite(totals), totals, 0.0)
-
-
-def _violation(compiled: Compiled, where: Layout, z: Array) -> float:
+def _violation(compiled: Compiled, where: Layout, z: Array, outputs: Array) -> float:
     """How much of the problem a guess violates: undefined values first, then constraints and conditions."""
     point = compiled.point
     constants = constants_of(compiled)
-    outputs = _point_values(compiled, where, z)
-    undefined = float(np.mean(~np.isfinite(outputs)))
     y = np.concatenate([z[where.nodes[where.at_place]].ravel(), z[where.places], z[where.parameters],
                         z[where.integrals]])  # fmt: skip
     end = np.asarray(compiled.end.value(y, compiled.constants)).ravel()
-    undefined += float(np.mean(~np.isfinite(end)))
+    undefined = float(np.mean(~np.isfinite(outputs))) + float(np.mean(~np.isfinite(end)))
     total = 0.0
     pointwise = outputs[:, point.states : point.states + point.constraints]
     for values, condition in (*zip(pointwise.T, compiled.pointwise, strict=True),
                               *zip(end[:-1], compiled.conditions, strict=True)):  # fmt: skip
         lower, upper = interval_of(condition, constants)
-        excess = np.maximum(np.maximum(lower - values, values - upper), 0.0)
-        size = max(float(np.nanmax(np.abs(values), initial=0.0)),
-                   *(abs(limit) for limit in (lower, upper) if np.isfinite(limit)))  # fmt: skip
-        total += float(np.nanmean(excess)) / size if size > 0 else 0.0
+        finite = np.atleast_1d(values)[np.isfinite(np.atleast_1d(values))]
+        if len(finite) == 0:
+            continue
+        excess = float(np.mean(np.maximum(np.maximum(lower - finite, finite - upper), 0.0)))
+        limits = [abs(limit) for limit in (lower, upper) if np.isfinite(limit)]
+        total += excess / max(float(np.abs(finite).max()), *limits) if excess else 0.0
     return 1e3 * undefined + total

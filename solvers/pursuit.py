@@ -241,7 +241,7 @@ def _begin(pursuit: Pursuit, minimise_: _Minimiser) -> tuple[Program, Minimum] |
     for attempt, options in enumerate(ATTEMPTS):
         mesh = first_mesh(stretches, FIRST_INTERVALS * (1 if attempt < 2 else 2))
         where = layout(compiled, mesh)
-        for guess in guesses(compiled, where)[: 2 if attempt else 3]:
+        for guess in guesses(compiled, mesh, where)[: 2 if attempt else 3]:
             program = _program(compiled, mesh, where, guess.z)
             minimum = minimise_(program, Start(guess.z / program.scale), options)
             if minimum.outcome in SOLVED:
@@ -252,7 +252,7 @@ def _begin(pursuit: Pursuit, minimise_: _Minimiser) -> tuple[Program, Minimum] |
                 return None
     mesh = first_mesh(stretches)
     where = layout(compiled, mesh)
-    guess = guesses(compiled, where)[0]
+    guess = guesses(compiled, mesh, where)[0]
     if set(ends) == {End.UNDEFINED}:
         pursuit.end, pursuit.findings = End.UNDEFINED, undefined_places(compiled, where, guess.z)
         return None

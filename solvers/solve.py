@@ -65,8 +65,9 @@ def _in_given_form(problem: Problem, watch: Watch | None, deadline: float) -> Pu
 def _sizes(problem: Problem) -> dict[str, float]:
     """Typical sizes of the independent variable and the unknowns; the same one where they are of like size."""
     compiled = compile_problem(lower(problem))
-    where = layout(compiled, first_mesh(len(problem.places) - 1))
-    z = guesses(compiled, where)[0].z
+    mesh = first_mesh(len(problem.places) - 1)
+    where = layout(compiled, mesh)
+    z = guesses(compiled, mesh, where)[0].z
     span = float(np.ptp(z[where.places])) or 1.0
     sizes = find_scales(compiled, where, z).states
     found = {

@@ -1,0 +1,150 @@
+"""Curves drawn from what the endpoint conditions say: lines through known values, bent if asked for."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.polynomial import polynomial
+from numpy.typing import NDArray
+
+from solvers.formula.evaluate import evaluate
+from solvers.formula.nodes import Node
+from solvers.functions import Compiled
+from solvers.limits import constants_of, interval_of, quantity_bounds
+from solvers.lowering import Quantity
+from solvers.mesh import Mesh
+from solvers.problem import Unknown
+from solvers.transcription import Layout
+
+Array = NDArray[np.float64]
+
+ARRAYS: dict[str, Callable[..., Any]] = {
+    "sqrt": np.sqrt, "exp": np.exp, "log": np.log, "sin": np.sin, "cos": np.cos, "tan": np.tan,
+    "asin": np.arcsin, "acos": np.arccos, "atan": np.arctan, "atan2": np.arctan2, "sinh": np.sinh, "cosh": np.cosh,
+    "tanh": np.tanh, "abs": np.abs, "sign": np.sign, "hypot": np.hypot, "power": np.power,
+    "min": lambda *values: np.minimum.reduce(np.broadcast_arrays(*values)),
+    "max": lambda *values: np.maximum.reduce(np.broadcast_arrays(*values)),
+}  # fmt: skip
+"""The operations of formulas on arrays."""
+
+
+@dataclass(frozen=True, slots=True)
+class Bend:
+    """A bend added to every line: its size relative to the unknown (or the range), and its number of half waves."""
+
+    size: float = 0.0
+    waves: int = 1
+
+
+def sketch(compiled: Compiled, mesh: Mesh, where: Layout, places: Array, parameters: Array, bend: Bend) -> Array:
+    """All variables (SI) but the integrals, which stay zero."""
+    lowered = compiled.lowered
+    problem = lowered.problem
+    starts, ends = places[where.stretch], places[where.stretch + 1]
+    nodes = mesh.breaks(places)
+    grid, back = np.unique(np.concatenate([nodes, starts + where.fractions * (ends - starts)]), return_inverse=True)
+    z = np.zeros(where.size)
+    z[where.places], z[where.parameters] = places, parameters
+    known = _known_values(compiled)
+    bounds = _bounds(compiled)
+    numbers = constants_of(compiled) | {p.name: float(v) for p, v in zip(problem.parameters, parameters, strict=True)}
+    for turn, unknown in enumerate(problem.unknowns):
+        if unknown.guess is not None:
+            rows = [_given(unknown.guess, grid, numbers, problem.independent)]
+            for _ in range(unknown.order):
+                rows.append(np.gradient(rows[-1], grid))
+        else:
+            rows = _lines(unknown, grid, places, known, _between(*bounds[unknown.name, 0]))
+            if bend.size and unknown.order:
+                _add(bend, rows, (grid - places[0]) / (places[-1] - places[0]), places[-1] - places[0], turn)
+        for order, row in enumerate(rows):
+            quantity = (unknown.name, order)
+            if quantity not in bounds:
+                continue
+            values = np.clip(row, *bounds[quantity])[back]
+            if quantity in lowered.states:
+                k = lowered.states.index(quantity)
+                z[where.inner[:, k]] = values[len(nodes) :]
+                z[where.nodes[:, k]] = values[: len(nodes)]
+            else:
+                z[where.controls[:, lowered.controls.index(quantity)]] = values[len(nodes) :]
+    return z
+
+
+def _bounds(compiled: Compiled) -> dict[Quantity, tuple[float, float]]:
+    """Lower and upper bound of every state and control."""
+    lowered = compiled.lowered
+    state_lower, state_upper, control_lower, control_upper = quantity_bounds(compiled)
+    quantities = (*lowered.states, *lowered.controls)
+    lower, upper = np.concatenate([state_lower, control_lower]), np.concatenate([state_upper, control_upper])
+    return {q: (float(a), float(b)) for q, a, b in zip(quantities, lower, upper, strict=True)}
+
+
+def _known_values(compiled: Compiled) -> dict[Quantity, list[tuple[int, float]]]:
+    """Values at places (by index) that conditions fix, or hold away from zero, by quantity."""
+    constants = constants_of(compiled)
+    known: dict[Quantity, list[tuple[int, float]]] = {}
+    for state, place, condition in compiled.fixed:
+        lower, upper = interval_of(condition, constants)
+        if condition.equality or not lower <= 0.0 <= upper:
+            value = lower if np.isfinite(lower) else upper
+            known.setdefault(compiled.lowered.states[state], []).append((place, value))
+    return known
+
+
+def _between(lower: float, upper: float) -> float:
+    """A value inside the bounds of an unknown about which nothing else is known."""
+    if np.isfinite(lower) and np.isfinite(upper):
+        return (lower + upper) / 2
+    if np.isfinite(lower) and lower >= 0:
+        return lower + max(1.0, abs(lower))
+    if np.isfinite(upper) and upper <= 0:
+        return upper - max(1.0, abs(upper))
+    return 0.0
+
+
+def _lines(
+    unknown: Unknown, grid: Array, places: Array, known: dict[Quantity, list[tuple[int, float]]], middle: float
+) -> list[Array]:
+    """An unknown and its derivatives, lowest first: each a line through its own known values, else the slope of y."""
+
+    def line(order: int) -> Array | None:
+        values = sorted(known.get((unknown.name, order), []))
+        if not values:
+            return None
+        return np.asarray(np.interp(grid, [places[index] for index, _ in values], [value for _, value in values]))
+
+    rows = [np.full_like(grid, middle) if (first := line(0)) is None else first]
+    for order in range(1, unknown.order + 1):
+        own = line(order)
+        if own is None:
+            own = np.gradient(rows[0], grid) if order == 1 else np.zeros_like(grid)
+        rows.append(own)
+    return rows
+
+
+def _add(bend: Bend, rows: list[Array], fraction: Array, span: float, turn: int) -> None:
+    """Add a bend that is flat enough at both ends for the unknown's order; every second unknown is out of step."""
+    order = len(rows) - 1
+    size = float(np.abs(rows[0]).max()) or abs(span)
+    shape = polynomial.polypow([0.0, 4.0, -4.0], max(1, (order + 1) // 2))
+    for _ in range(bend.waves - 1 + turn % 2):
+        shape = polynomial.polymul(shape, [1.0, -2.0])
+    for k in range(order + 1):
+        rows[k] = rows[k] + bend.size * size * polynomial.polyval(fraction, shape) / span**k
+        shape = polynomial.polyder(shape)
+
+
+def _given(
+    guess: Node | tuple[tuple[float, float], ...], grid: Array, numbers: dict[str, float], independent: str
+) -> Array:
+    """The user's guess on a grid."""
+    if isinstance(guess, tuple):
+        places, values = np.array(guess).T
+        return np.asarray(np.interp(grid, places, values))
+    with np.errstate(all="ignore"):
+        value = evaluate(guess, lambda name, order: grid if name == independent else numbers[name], ARRAYS)
+    return np.array(np.broadcast_to(np.asarray(value, dtype=np.float64), grid.shape))
