@@ -16,7 +16,8 @@ class Complaint:
     """One complaint, ready to be shown.
 
     `field` is where to go to put it right, `start` and `end` the characters there to select, `line` the line that they
-    are in (0: not known), `where` the place in words.  `before`, `marked` and `after` are empty together where it is not about characters.
+    are in (0: not known), `where` the place in words.  `before`, `marked` and `after` are empty together where it is
+    not about characters.
     """
 
     message: str
