@@ -30,9 +30,14 @@ def check(problem: Problem) -> None:
 
 
 def _pointless(problem: Problem) -> Iterator[Complaint]:
-    """Lines of dynamics without an unknown."""
+    """Lines of dynamics without an unknown, limits without anything that could meet them."""
     names = {unknown.name for unknown in problem.unknowns}
     reach = reach_of(problem.where)
+    open_names = names | {parameter.name for parameter in problem.parameters}
+    for condition in (*problem.constraints, *problem.integrals):
+        if not open_names & {name for name, _ in derivatives([condition.body], reach)}:
+            message = f"{quoted(condition.label)} says nothing about an unknown or a parameter."
+            yield Complaint(condition.pointer, None, "says-nothing", message, "Leave it out, or bring in an unknown.")
     for line in problem.dynamics:
         if not names & {name for name, _ in derivatives([line.left, line.right], reach)}:
             message = f"{quoted(line.label)} says nothing about an unknown."

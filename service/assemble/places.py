@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, replace
 
 from service.assemble.dimensions import Units
@@ -26,10 +26,10 @@ class Spot:
     value: float | None
     name: str | None
 
-    def same(self, other: Spot) -> bool:
-        """Whether both are one place."""
+    def same(self, other: Spot, room: float = 0.0) -> bool:
+        """Whether both are one place; fixed ones are within rounding, or within `room`."""
         if self.value is not None and other.value is not None:
-            return math.isclose(self.value, other.value, rel_tol=SAME, abs_tol=0.0)
+            return math.isclose(self.value, other.value, rel_tol=SAME, abs_tol=room)
         return self.value is other.value and self.name == other.name
 
 
@@ -38,6 +38,7 @@ class Places:
 
     def __init__(self, spots: tuple[Spot, ...]) -> None:
         self.spots = spots
+        self.room = _room(spots)
 
     @property
     def records(self) -> tuple[Place, ...]:
@@ -46,7 +47,7 @@ class Places:
 
     def index(self, spot: Spot) -> int:
         """Which of the places a spot is."""
-        return next(index for index, known in enumerate(self.spots) if known.same(spot))
+        return next(index for index, known in enumerate(self.spots) if known.same(spot, self.room))
 
 
 def spot_of(tree: Node, label: str, units: Units, parameters: dict[str, Parameter]) -> Spot:
@@ -79,6 +80,7 @@ def find_places(formulas: Formulas, units: Units, parameters: dict[str, Paramete
     first, last = ends
     refuse(Stage.CONDITIONS, _ends(formulas, first, last, parameters))
     inner: list[Spot] = []
+    room = _room(ends)
     for formula, node in _named(formulas):
         label = text(node.place)
         try:
@@ -88,7 +90,7 @@ def find_places(formulas: Formulas, units: Units, parameters: dict[str, Paramete
             hint = "A place is a number, a formula of constants, or one parameter."
             complaints.append(formula.complaint(node.place.span, "bad-place", message, hint))
             continue
-        if any(spot.same(known) for known in (first, last, *inner)):
+        if any(spot.same(known, room) for known in (first, last, *inner)):
             continue
         wrong = _outside(spot, first, last, parameters, units)
         if wrong:
@@ -105,6 +107,11 @@ def find_places(formulas: Formulas, units: Units, parameters: dict[str, Paramete
         inner.insert(position, spot)
     refuse(Stage.CONDITIONS, complaints)
     return Places((first, *inner, last))
+
+
+def _room(spots: Sequence[Spot]) -> float:
+    """How far apart two names for one place may be: rounding of the largest of the places."""
+    return SAME * max((abs(spot.value) for spot in spots if spot.value is not None), default=0.0)
 
 
 def _named(formulas: Formulas) -> Iterator[tuple[Formula, At]]:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from contextlib import suppress
 
 from service.assemble.domain import value_of
@@ -12,9 +12,12 @@ from service.assemble.quoting import quoted
 from service.assemble.values import FixedValues
 from service.complaints import Complaint, listing, pointer
 from solvers.formula.evaluate import REAL, evaluate
-from solvers.formula.nodes import At, Name, Node
+from solvers.formula.nodes import At, Name, Node, walk
 from solvers.problem import Condition, Problem
 from solvers.units import Unit
+
+MOST_EVALUATED = 100_000
+"""Nodes that are evaluated at places in one document."""
 
 SLACK = 1e-9
 """Relative to the larger of value and limit: rounding."""
@@ -34,7 +37,7 @@ def excluded_values(problem: Problem, values: FixedValues) -> Iterator[Complaint
         yield from _bounds("parameters", parameter.name, parameter.name, parameter.name, within, parameter.unit, values)
     evaluation = _Evaluation(problem, values)
     for condition in problem.constraints:
-        for index in range(len(problem.places)):
+        for index in evaluation.places:
             yield from _limit(condition, index, evaluation)
     for condition in problem.endpoints:
         yield from _limit(condition, None, evaluation)
@@ -60,14 +63,23 @@ def _inside(value: float, lower: float, upper: float) -> bool:
     return above and below
 
 
+def _examined(problem: Problem) -> Sequence[int]:
+    """The places at which limits are tried: all, or only the ends where that would take long."""
+    trees = [tree for _, tree in problem.where] + [condition.body for condition in problem.constraints]
+    size = sum(1 for tree in trees for _ in walk(tree))
+    last = len(problem.places) - 1
+    return range(last + 1) if size * len(problem.places) <= MOST_EVALUATED else (0, last)
+
+
 class _Evaluation:
     """Values of formulas from the values that conditions fix, each with the variables that went into it."""
 
     def __init__(self, problem: Problem, values: FixedValues) -> None:
         self.problem = problem
         self.values = values
+        self.places = _examined(problem)
         self.abbreviations: dict[tuple[str, int], tuple[float, frozenset[Variable]]] = {}
-        for index in range(len(problem.places)):
+        for index in self.places:
             for name, tree in problem.where:  # each uses only earlier ones
                 with suppress(ArithmeticError, ValueError, LookupError):
                     self.abbreviations[name, index] = self.value(tree, index)
@@ -116,7 +128,7 @@ def _limit(condition: Condition, index: int | None, evaluation: _Evaluation) -> 
         return
     # Rounding of differences such as x^2 + y^2 - r^2 is not small beside the result, so equalities get some room.
     room = 1e-6 if condition.equality else 0.0
-    if not used or _inside(found, lower - room, upper + room):
+    if not used or not math.isfinite(found) or _inside(found, lower - room, upper + room):
         return
     place = "" if index is None else f" at {evaluation.problem.places[index].label}"
     by = values.told_by(set(used))

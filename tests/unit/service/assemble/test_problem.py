@@ -123,6 +123,18 @@ def test_an_end_may_be_a_formula_of_constants():
     assert len(problem.places) == 2
 
 
+def test_names_of_one_place_differ_by_rounding_only():
+    problem = stated(constants={"c": 0.1}, endpoints=["x(3*c) = 1", "x(0.3) <= 2", "x(1e-15) = 0"])
+    assert [place.label for place in problem.places] == ["0", "3*c", "1"]
+
+
+def test_a_free_end_needs_no_bounds():
+    problem = stated(
+        independent={"name": "t", "from": 0, "to": "T"}, parameters={"T": {}}, endpoints=["x(0.3) = 1", "x(T) = 2"]
+    )
+    assert [place.label for place in problem.places] == ["0", "0.3", "T"]
+
+
 def test_free_places_are_parameters():
     problem = stated(
         independent={"name": "t", "from": 0, "to": "T"},
