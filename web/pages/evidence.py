@@ -72,14 +72,21 @@ def _independent(result: Mapping[str, Any]) -> tuple[str, str]:
     return str(found.get("name") or ""), str(found.get("unit") or "")
 
 
+def _place(place: float, result: Mapping[str, Any]) -> str:
+    """A place with its unit; what is lost in the rounding of the whole way is 0."""
+    arcs = (result.get("curve") or {}).get("arcs") or ()
+    way = max((abs(end) for arc in arcs for end in (arc["breaks"][0], arc["breaks"][-1])), default=0.0)
+    return display.quantity(place if abs(place) > 1e-13 * way else 0.0, _independent(result)[1], 5)
+
+
 def _where(where: Any, result: Mapping[str, Any]) -> str:
     """`t = 0.3 s, x`; a dash where nothing is said."""
     if not where:
         return "—"
-    name, unit = _independent(result)
+    name, _ = _independent(result)
     place = where.get("place")
     parts = [
-        f"{name} = {display.quantity(place, unit, 5)}" if place is not None else "",
+        f"{name} = {_place(place, result)}" if place is not None else "",
         str(where.get("subject") or ""),
     ]
     return ", ".join(part for part in parts if part) or "—"
@@ -115,12 +122,11 @@ def _effect(price: Mapping[str, Any]) -> str:
 
 
 def reach_of(line: Extremes, result: Mapping[str, Any]) -> tuple[str, ...]:
-    _, unit = _independent(result)
     return (
         line.name,
         display.quantity(line.lowest, line.unit),
-        display.quantity(line.lowest_at, unit, 5),
+        _place(line.lowest_at, result),
         display.quantity(line.highest, line.unit),
-        display.quantity(line.highest_at, unit, 5),
+        _place(line.highest_at, result),
         display.quantity(line.largest, line.unit),
     )

@@ -25,13 +25,15 @@ Rows = tuple[tuple[str, ...], ...]
 class Preview:
     """The first rows of the chosen table and the files it can be had as; `error` where the choice cannot be made.
 
-    `step_unit` and `example` show in the empty fields of the form what may be written there.
+    `between` says for each column after the first how far straight lines between the rows miss the curve.  `step_unit`
+    and `example` show in the empty fields of the form what may be written there.
     """
 
     choice: Choice
     headings: tuple[str, ...]
     rows: Rows
     last: tuple[str, ...]
+    between: tuple[str, ...]
     total: str
     error: str
     files: Pairs
@@ -61,6 +63,7 @@ def preview_of(result: Mapping[str, Any], run_id: str, choice: Choice) -> Previe
         headings=(*(("arc",) if made.arcs else ()), *(bracketed(c.name, display.unit(c.unit)) for c in made.columns)),
         rows=tuple(cells),
         last=last if len(made.rows) > PREVIEW_ROWS else (),
+        between=(*(("",) if made.arcs else ()), *(display.number(column.between, 2) for column in made.columns[1:])),
         total=f"{len(made.rows):,}",
         error=error,
         files=tuple((file.name, links.table(run_id, suffix, **query)) for suffix, file in FILE_FORMATS.items()),

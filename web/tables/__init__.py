@@ -4,9 +4,12 @@ from collections.abc import Callable
 from dataclasses import dataclass
 
 from web.tables.choice import Choice, read_choice
+from web.tables.columns import Column
 from web.tables.csv import to_csv, to_csvw, to_json
+from web.tables.error import TableError
 from web.tables.npz import to_npz
-from web.tables.sampling import MOST_ROWS, Column, Table, TableError, table
+from web.tables.places import MOST_ROWS
+from web.tables.sampling import Table, table
 from web.tables.xlsx import to_xlsx
 
 __all__ = [

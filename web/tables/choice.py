@@ -6,7 +6,8 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
-from web.tables.sampling import Table, TableError, table
+from web.tables.error import TableError
+from web.tables.sampling import Table, table
 
 
 @dataclass(frozen=True, slots=True)

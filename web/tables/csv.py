@@ -6,6 +6,7 @@ import csv
 import io
 import json
 import math
+from dataclasses import asdict
 from typing import Any
 
 from web.tables.sampling import Table
@@ -33,7 +34,8 @@ def to_csv(table: Table) -> bytes:
 def to_csvw(table: Table, address: str) -> dict[str, Any]:
     """The metadata document of `to_csv`'s file at `address` (W3C, Metadata Vocabulary for Tabular Data, 2015).
 
-    A unit is a note on its column, since the vocabulary has no word for it.
+    The unit of a column is a note, since the vocabulary has no word for it; so is `betweenRows`, how far straight lines
+    between the rows miss the curve.
     """
     columns: list[dict[str, Any]] = [
         {
@@ -41,7 +43,7 @@ def to_csvw(table: Table, address: str) -> dict[str, Any]:
             "titles": column.heading,
             "dc:description": column.meaning,
             "datatype": "double",
-            "notes": [{"name": column.name, "unit": column.unit or "1"}],
+            "notes": [{"name": column.name, "unit": column.unit or "1", "betweenRows": column.between}],
         }
         for number, column in enumerate(table.columns, start=1)
     ]
@@ -63,7 +65,7 @@ def to_json(table: Table) -> bytes:
         "title": table.title,
         "caution": table.caution,
         "record": dict(table.record),
-        "columns": [{"name": c.name, "unit": c.unit, "meaning": c.meaning} for c in table.columns],
+        "columns": [asdict(column) for column in table.columns],
         "rows": [[value if math.isfinite(value) else None for value in row] for row in table.rows.tolist()],
     }
     if table.arcs:

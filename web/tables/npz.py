@@ -1,4 +1,4 @@
-"""The table as a NumPy archive: `names`, `units`, `meanings`, `rows`, and no pickled object."""
+"""The table as a NumPy archive: `names`, `units`, `meanings`, `between`, `rows`, and no pickled object."""
 
 from __future__ import annotations
 
@@ -18,6 +18,7 @@ def to_npz(table: Table) -> bytes:
         names=np.array([column.name for column in table.columns]),
         units=np.array([column.unit for column in table.columns]),
         meanings=np.array([column.meaning for column in table.columns]),
+        between=np.array([column.between for column in table.columns]),
         rows=table.rows,
         arcs=np.array(table.arcs, dtype=str),
         record=np.array(table.record, dtype=str).reshape(-1, 2),

@@ -11,6 +11,8 @@ from xlsxwriter.worksheet import Worksheet
 
 from web.tables.sampling import Table
 
+BETWEEN_HEADING = "straight lines between the rows miss the curve by"
+
 
 class _ExactSheet(Worksheet):  # type: ignore[misc]  # the package has no types
     """Writes numbers so that they read back as the same numbers: the package itself keeps 16 digits of 17."""
@@ -54,14 +56,15 @@ def _write_record(
     wrapped: xlsxwriter.format.Format,
 ) -> None:
     sheet.set_column(0, 0, 30)
-    sheet.set_column(1, 2, 60)
+    sheet.set_column(1, 3, 50)
     lines = (("title", table.title), ("caution", table.caution), *table.record)
     for row, (heading, text) in enumerate(lines):
         sheet.write_string(row, 0, heading)
         sheet.write_string(row, 1, text, wrapped)
     start = len(lines) + 1
-    for number, heading in enumerate(("column", "meaning", "unit")):
+    for number, heading in enumerate(("column", "meaning", "unit", BETWEEN_HEADING)):
         sheet.write_string(start, number, heading, bold)
     for row, column in enumerate(table.columns, start=start + 1):
         for number, text in enumerate((column.name, column.meaning, column.unit)):
             sheet.write_string(row, number, text)
+        sheet.write_number(row, 3, column.between)

@@ -9,7 +9,7 @@ import pytest
 
 from web.extremes import extremes
 from web.tables import MOST_ROWS, TableError, table
-from web.tables.sampling import even_places, nodes, stepped_places
+from web.tables.places import even_places, nodes, stepped_places
 from web.trajectory import read_trajectory
 from web.unit_text import per
 
@@ -68,6 +68,16 @@ def test_derivatives_of_a_polynomial_are_exact(stage):
     assert acceleration == pytest.approx(np.where(first, 2000, -2000)) == a
     assert jerk == pytest.approx(np.zeros(9), abs=1e-5)
     assert [c.unit for c in found.columns] == ["s", "mm", "mm/s", "mm/s^2", "mm/s^3", "mm/s^2"]
+
+
+def test_the_gap_between_the_rows_and_the_curve_is_told(stage):
+    """A parabola is missed by a h^2 / 8 in the middle of a step h."""
+    found = table(stage, rows=11, columns=["x", "a"])
+    step = found.rows[1, 0]
+    _, x, a = found.columns
+    assert x.between == pytest.approx(2000 * step**2 / 8, rel=1e-6)
+    assert table(stage, rows=101, columns=["x"]).columns[1].between == pytest.approx(x.between / 100, rel=1e-4)
+    assert a.between >= 2000  # the jump stays, however short the step
 
 
 def test_a_jump_shows_the_value_before_it(stage):
