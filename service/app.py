@@ -34,7 +34,7 @@ def create_app(settings: Settings, services: Services | None = None) -> FastAPI:
 
     @asynccontextmanager
     async def lifespan(app: FastAPI) -> AsyncIterator[None]:
-        started: Services = services or await run_in_threadpool(Services.start, settings, metrics)
+        started = services if services else await run_in_threadpool(Services.start, settings, metrics)
         app.state.services = started
         try:
             yield

@@ -5,6 +5,7 @@ The workers are started first: they load the solver while this process loads the
 
 from __future__ import annotations
 
+import gc
 import socket
 from collections.abc import Callable
 
@@ -44,8 +45,11 @@ def _serve(listener: socket.socket, services: Services, announce: Callable[[str]
             if self.started:
                 announce(_address(listener))
 
+    app = create_app(services.settings, services)
+    gc.freeze()  # what is loaded now stays
+    gc.enable()
     config = uvicorn.Config(
-        create_app(services.settings, services),
+        app,
         access_log=False,
         server_header=False,
         lifespan="on",

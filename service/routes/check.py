@@ -10,10 +10,9 @@ from pydantic import BaseModel, ConfigDict, Field
 from starlette.concurrency import run_in_threadpool
 from starlette.responses import JSONResponse, Response
 
-from service import schemas
 from service.assemble import assemble
 from service.negotiation import JSON
-from service.openapi import PROBLEM_BODY, REFUSALS, failures
+from service.openapi import PROBLEM_BODY, REFUSALS, failures, shape
 from service.reading import read_back
 from service.routes.needs import JsonBody, TheServices, accepts
 from service.services import Services
@@ -38,7 +37,7 @@ class Wish(BaseModel):
     dependencies=[Depends(accepts(JSON))],
     openapi_extra=PROBLEM_BODY,
     responses={
-        200: {"model": schemas.ReadingDocument},
+        200: shape("ReadingDocument"),
         **failures(*REFUSALS, "parameters", "not-acceptable", "foreign-request"),
     },
 )

@@ -11,11 +11,11 @@ from starlette.concurrency import run_in_threadpool
 from starlette.requests import Request
 from starlette.responses import JSONResponse, Response
 
-from service import conditional, schemas
+from service import conditional
 from service.accepting import accept, idempotency_key
 from service.errors import Fault
 from service.negotiation import JSON, preferences
-from service.openapi import PROBLEM_BODY, REFUSALS, failures
+from service.openapi import PROBLEM_BODY, REFUSALS, failures, shape
 from service.resource import has_result, resource
 from service.results import result_text
 from service.routes.needs import JsonBody, TheRun, TheServices, accepts
@@ -37,9 +37,9 @@ router = APIRouter(
     response_model=None,
     openapi_extra=PROBLEM_BODY,
     responses={
-        200: {"model": schemas.Run, "description": "The run that this Idempotency-Key started before"},
-        201: {"model": schemas.Run, "description": "The run ended within the time waited"},
-        202: {"model": schemas.Run, "description": "Accepted, and kept from now on"},
+        200: shape("Run", "The run that this Idempotency-Key started before"),
+        201: shape("Run", "The run ended within the time waited"),
+        202: shape("Run", "Accepted, and kept from now on"),
         **failures(*REFUSALS, "idempotency-key", "foreign-request", "busy"),
     },
 )
@@ -87,7 +87,7 @@ class Listing(BaseModel):
     "",
     summary="List runs",
     response_model=None,
-    responses={200: {"model": schemas.RunPage}, **failures("parameters")},
+    responses={200: shape("RunPage"), **failures("parameters")},
 )
 def list_runs(request: Request, services: TheServices, listing: Annotated[Listing, Query()]) -> Response:
     """The newest first; `next` and the Link header (RFC 8288) lead on, also while new runs come in."""
@@ -102,9 +102,7 @@ def list_runs(request: Request, services: TheServices, listing: Annotated[Listin
     return JSONResponse({"runs": [resource(run) for run in page.runs], "next": following}, headers=headers)
 
 
-@router.get(
-    "/{id}", summary="Read a run", response_model=None, responses={200: {"model": schemas.Run}, **failures("not-found")}
-)
+@router.get("/{id}", summary="Read a run", response_model=None, responses={200: shape("Run"), **failures("not-found")})
 def read_run(request: Request, run: TheRun) -> Response:
     """How far it is, and what came out; cheap to ask again with If-None-Match."""
     headers = {} if run.state.ended else {"retry-after": RETRY_AFTER}
@@ -115,7 +113,7 @@ def read_run(request: Request, run: TheRun) -> Response:
     "/{id}/result",
     summary="Read the result document",
     response_model=None,
-    responses={200: {"model": schemas.ResultDocument}, **failures("not-found", "unfinished")},
+    responses={200: shape("ResultDocument"), **failures("not-found", "unfinished")},
 )
 def read_result(request: Request, run: TheRun, services: TheServices) -> Response:
     """The verdict with its evidence and the exact curve; it never changes."""
@@ -139,8 +137,8 @@ def read_problem(request: Request, run: TheRun, services: TheServices) -> Respon
     status_code=202,
     response_model=None,
     responses={
-        200: {"model": schemas.Run, "description": "The run has ended"},
-        202: {"model": schemas.Run, "description": "It is asked to stop and does so soon"},
+        200: shape("Run", "The run has ended"),
+        202: shape("Run", "It is asked to stop and does so soon"),
         **failures("not-found", "foreign-request"),
     },
 )

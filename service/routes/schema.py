@@ -10,8 +10,6 @@ from starlette.requests import Request
 from starlette.responses import Response
 
 from service import conditional
-from service.schemas import ResultDocument, json_schema
-from service.spec.schema import problem_schema
 from web import links
 
 SCHEMA_JSON = "application/schema+json"
@@ -23,12 +21,16 @@ router = APIRouter(tags=["schemas"])
 @router.get(links.PROBLEM_SCHEMA, summary="JSON Schema of the problem document", response_model=None)
 def read_problem_schema(request: Request) -> Response:
     """Draft 2020-12, with examples that validate."""
+    from service.spec.schema import problem_schema
+
     return _schema(request, {**problem_schema(), "$id": links.PROBLEM_SCHEMA})
 
 
 @router.get(links.RESULT_SCHEMA, summary="JSON Schema of the result document", response_model=None)
 def read_result_schema(request: Request) -> Response:
     """Draft 2020-12."""
+    from service.schemas import ResultDocument, json_schema
+
     return _schema(request, json_schema(ResultDocument, links.RESULT_SCHEMA))
 
 

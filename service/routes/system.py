@@ -7,9 +7,8 @@ from starlette.responses import JSONResponse, Response
 
 from service.errors import Fault
 from service.metrics import METRICS_TYPE
-from service.openapi import failures
+from service.openapi import failures, shape
 from service.routes.needs import TheServices
-from service.schemas import Readiness
 
 router = APIRouter(tags=["health"])
 
@@ -24,7 +23,7 @@ async def live() -> Response:
     "/readyz",
     summary="Is the service ready for runs?",
     response_model=None,
-    responses={200: {"model": Readiness}, **failures("not-ready")},
+    responses={200: shape("Readiness"), **failures("not-ready")},
 )
 def ready(services: TheServices) -> Response:
     """200 where the database can be written and a worker is up; else 503, and the body says what is missing."""
