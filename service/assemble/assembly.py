@@ -12,11 +12,13 @@ from service.assemble.dimensions import Sort, Units
 from service.assemble.domain import undefined, with_children
 from service.assemble.formulas import Formulas, Statement, parse_all
 from service.assemble.guesses import Guess, check_guess_names, read_guesses, with_guess
-from service.assemble.meaning import Meaning, understand
+from service.assemble.meaning import Meaning, read_meaning
 from service.assemble.names import Kind, declare
 from service.assemble.orders import explicit, find_orders, reach_of
+from service.assemble.placement import misplaced
 from service.assemble.places import Places, find_places, settle
 from service.assemble.relations import Sides, conditions, convert, says_nothing, shown_unit
+from service.assemble.resolving import wrong_names
 from service.complaints import Complaint, Stage, refuse
 from service.spec import Document
 from service.units import Measure
@@ -41,7 +43,9 @@ def assemble(document: Document) -> Problem:
     check_guess_names(document, names)
     formulas = parse_all(document, names)
     _check_size(formulas)
-    meaning = understand(formulas, names)
+    refuse(Stage.NAMES, wrong_names(formulas, names))
+    meaning = read_meaning(formulas, names)
+    refuse(Stage.FORMULAS, misplaced(formulas, meaning))
     _check_written_out(formulas, meaning)
     declared = read_declared(document, names)
     constants = {name: constant.value for name, constant in declared.constants.items()}
