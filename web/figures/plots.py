@@ -185,7 +185,6 @@ def _mesh(trajectory: Trajectory) -> Iterable[Plot]:
                 "length of the interval",
                 np.column_stack([lefts, lefts + widths])[shown].ravel(),
                 np.repeat(widths[shown], 2),
-                5,
             ),
         ),
         table=np.column_stack([lefts, widths])[rows],

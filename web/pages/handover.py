@@ -10,7 +10,7 @@ import numpy as np
 
 from solvers.curve import Array
 from web import display, links
-from web.tables import FILE_FORMATS, Choice, TableError
+from web.tables import FILE_FORMATS, Choice, Table, TableError
 from web.trajectory import read_trajectory
 from web.unit_text import bracketed
 
@@ -63,7 +63,7 @@ def preview_of(result: Mapping[str, Any], run_id: str, choice: Choice) -> Previe
         headings=(*(("arc",) if made.arcs else ()), *(bracketed(c.name, display.unit(c.unit)) for c in made.columns)),
         rows=tuple(cells),
         last=last if len(made.rows) > PREVIEW_ROWS else (),
-        between=(*(("",) if made.arcs else ()), *(display.number(column.between, 2) for column in made.columns[1:])),
+        between=(*(("",) if made.arcs else ()), *_missed(made)),
         total=f"{len(made.rows):,}",
         error=error,
         files=tuple((file.name, links.table(run_id, suffix, **query)) for suffix, file in FILE_FORMATS.items()),
@@ -71,6 +71,13 @@ def preview_of(result: Mapping[str, Any], run_id: str, choice: Choice) -> Previe
         step_unit=f"in {display.unit(made.columns[0].unit)}" if made.columns[0].unit else "",
         example=_example(result),
     )
+
+
+def _missed(made: Table) -> tuple[str, ...]:
+    """How far straight lines between the rows miss each column after the first."""
+    sizes = np.nanmax(np.abs(made.rows), axis=0, initial=0.0)[1:].tolist()
+    pairs = zip(made.columns[1:], sizes, strict=True)
+    return tuple(display.number(c.between if c.between > DUST * size else 0.0, 2) for c, size in pairs)
 
 
 def _without_dust(rows: Array) -> Array:
