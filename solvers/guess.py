@@ -13,6 +13,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from solvers.evaluation import end_inputs, point_outputs
 from solvers.functions import Compiled
 from solvers.limits import constants_of, interval_of, number
 from solvers.mesh import Mesh
@@ -56,7 +57,7 @@ def guesses(compiled: Compiled, mesh: Mesh, where: Layout) -> list[Guess]:
 def _guess(compiled: Compiled, mesh: Mesh, where: Layout, places: Array, parameters: Array, bend: Bend) -> Guess:
     z = sketch(compiled, mesh, where, places, parameters, bend)
     first = compiled.point.states + compiled.point.constraints
-    outputs = _outputs(compiled, where, z)
+    outputs = point_outputs(compiled, where, z)
     totals = where.measures @ outputs[:, first : first + compiled.point.integrals]
     z[where.integrals] = np.where(np.isfinite(totals), totals, 0.0)
     return Guess(z, _violation(compiled, where, z, outputs), bent=bend.size != 0)
@@ -115,7 +116,7 @@ def _size_parameters(compiled: Compiled, mesh: Mesh, where: Layout, places: Arra
 
 def _misfit(compiled: Compiled, where: Layout, z: Array) -> float:
     """How much the rates differ from the slopes of the lines over the whole range, relative to the states' sizes."""
-    rates = _outputs(compiled, where, z)[:, : compiled.point.states]
+    rates = point_outputs(compiled, where, z)[:, : compiled.point.states]
     slopes = z[where.nodes[-1]] - z[where.nodes[0]]
     sizes = np.abs(z[where.nodes]).max(axis=0)
     sizes = np.where(sizes > 0, sizes, max(float(sizes.max(initial=0.0)), 1e-300))
@@ -123,23 +124,11 @@ def _misfit(compiled: Compiled, where: Layout, z: Array) -> float:
     return misfit if np.isfinite(misfit) else np.inf
 
 
-def _outputs(compiled: Compiled, where: Layout, z: Array) -> Array:
-    """Outputs of the point function at every point (M x outputs)."""
-    count = len(where.fractions)
-    starts, ends = where.places[where.stretch], where.places[where.stretch + 1]
-    v = np.hstack([z[where.inner], z[where.controls], z[starts][:, None], z[ends][:, None],
-                   np.tile(z[where.parameters], (count, 1))])  # fmt: skip
-    d = np.hstack([where.fractions[:, None], np.tile(compiled.constants, (count, 1))])
-    return np.asarray(compiled.point.value.map(count)(v.T, d.T)).T
-
-
 def _violation(compiled: Compiled, where: Layout, z: Array, outputs: Array) -> float:
     """How much of the problem a guess violates: undefined values first, then constraints and conditions."""
     point = compiled.point
     constants = constants_of(compiled)
-    y = np.concatenate([z[where.nodes[where.at_place]].ravel(), z[where.places], z[where.parameters],
-                        z[where.integrals]])  # fmt: skip
-    end = np.asarray(compiled.end.value(y, compiled.constants)).ravel()
+    end = np.asarray(compiled.end.value(end_inputs(where, z), compiled.constants)).ravel()
     undefined = float(np.mean(~np.isfinite(outputs))) + float(np.mean(~np.isfinite(end)))
     total = 0.0
     pointwise = outputs[:, point.states : point.states + point.constraints]

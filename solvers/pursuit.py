@@ -20,7 +20,7 @@ from solvers.ipopt import Iterate, Minimum, Outcome, Start, minimise
 from solvers.lowering import lower
 from solvers.mesh import Mesh, interval, uniform
 from solvers.problem import Problem
-from solvers.scaling import find_row_sizes, find_scales
+from solvers.scaling import Scales, find_row_sizes, find_scales
 from solvers.solution import Finding, MeshStep, Progress, Watch
 from solvers.trajectory import Trajectory, carry, distance, related, trajectory
 from solvers.transcription import Layout, Program, layout, transcribe
@@ -306,9 +306,9 @@ def _runs_away(program: Program, minimum: Minimum) -> bool:
     return not np.isfinite(minimum.value) or minimum.value < -1e6
 
 
-def _program(compiled: Compiled, mesh: Mesh, where: Layout, z: Array) -> Program:
-    """A program whose scales come from values (SI) on its mesh."""
-    scales = find_scales(compiled, where, z)
+def _program(compiled: Compiled, mesh: Mesh, where: Layout, z: Array, before: Scales | None = None) -> Program:
+    """A program whose scales come from values (SI) on its mesh, and do not fall far below those of the mesh before."""
+    scales = find_scales(compiled, where, z, before)
     return transcribe(compiled, mesh, scales, find_row_sizes(compiled, where, scales, z))
 
 
@@ -327,7 +327,7 @@ def _next(path: Trajectory, mesh: Mesh, minimise_: _Minimiser) -> tuple[Program,
     compiled = path.program.compiled
     where: Layout = layout(compiled, mesh)
     carried = carry(path, mesh, where)
-    program = _program(compiled, mesh, where, carried.z)
+    program = _program(compiled, mesh, where, carried.z, path.program.scales)
     warm = carried.onto(program)
     for start in (warm, Start(warm.z)):
         minimum = minimise_(program, start)
@@ -363,7 +363,8 @@ def _settled(pursuit: Pursuit) -> End | None:
     if value_met and errors[-1] <= tolerance:
         return End.CONVERGED
     stuck = len(errors) > 3 and min(errors[-3:]) > 0.3 * errors[-4]
-    if value_met and (stuck or (pursuit.value_met_before and pursuit.curve_error <= 100 * tolerance)):
+    slow = len(errors) > 1 and errors[-1] > 0.5 * errors[-2] and pursuit.curve_error <= 100 * tolerance
+    if value_met and (stuck or (slow and pursuit.value_met_before)):
         return End.SETTLED
     pursuit.value_met_before = value_met
     return None

@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, fields
 from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
 
+from solvers.evaluation import end_inputs, point_outputs, point_slopes
 from solvers.limits import quantity_bounds
 
 if TYPE_CHECKING:
@@ -42,10 +43,15 @@ def _finite_size(lower: float, upper: float) -> float:
     return max((abs(limit) for limit in (lower, upper) if np.isfinite(limit)), default=0.0)
 
 
-def find_scales(compiled: Compiled, where: Layout, z: Array) -> Scales:
+SHRINKAGE = 1e-3
+"""How much smaller a size may become from one mesh to the next: what tends to zero must not be blown up."""
+
+
+def find_scales(compiled: Compiled, where: Layout, z: Array, before: Scales | None = None) -> Scales:
     """Sizes from values (SI) on a mesh: the largest value of each quantity, else its bounds, else its neighbours.
 
-    A quantity that is zero all along gets the size that its derivative or integral has over the whole range.
+    A quantity that is zero all along gets the size that its derivative or integral has over the whole range.  `before`
+    are the sizes on the mesh before, where there was one.
     """
     lowered = compiled.lowered
     places = z[where.places]
@@ -67,37 +73,41 @@ def find_scales(compiled: Compiled, where: Layout, z: Array) -> Scales:
                 near = min(known, key=lambda k: abs(k - order), default=None)
                 sizes[name, order] = span**-order if near is None else sizes[name, near] * span ** (near - order)
     parameters = np.abs(z[where.parameters])
-    integrals = np.abs(z[where.integrals])
+    integrals = _integral_sizes(compiled, where, z)
     for index, parameter in enumerate(lowered.problem.parameters):
         if parameters[index] == 0:
             parameters[index] = _finite_size(parameter.lower, parameter.upper)
-    return Scales(
+    found = Scales(
         states=np.array([sizes[q] for q in lowered.states]),
         controls=np.array([sizes[q] for q in lowered.controls]),
         places=np.full(len(places), max(span, 1e-3 * float(np.abs(places).max()))),
         parameters=np.where(parameters > 0, parameters, 1.0),
         integrals=np.where(integrals > 0, integrals, 1.0),
     )
+    if before is None:
+        return found
+    return Scales(*(np.maximum(getattr(found, f.name), SHRINKAGE * getattr(before, f.name)) for f in fields(Scales)))
+
+
+def _integral_sizes(compiled: Compiled, where: Layout, z: Array) -> Array:
+    """Integrals of the absolute values: an integral that cancels to zero is not small for that."""
+    point = compiled.point
+    outputs = point_outputs(compiled, where, z)
+    first = point.states + point.constraints
+    integrands = np.abs(outputs[:, first : first + point.integrals])
+    return np.asarray(where.measures @ np.where(np.isfinite(integrands), integrands, 0.0))
 
 
 def find_row_sizes(compiled: Compiled, where: Layout, scales: Scales, z: Array) -> RowSizes:
     """Sizes of the outputs from their slopes at values (SI) on a mesh: how much each changes over the scales."""
     point, end = compiled.point, compiled.end
-    count = len(where.fractions)
-    constants = np.array(compiled.constants)
-    starts, ends = where.places[where.stretch], where.places[where.stretch + 1]
-    v = np.hstack([z[where.inner], z[where.controls], z[starts][:, None], z[ends][:, None],
-                   np.tile(z[where.parameters], (count, 1))])  # fmt: skip
-    d = np.hstack([where.fractions[:, None], np.tile(constants, (count, 1))])
     sizes = np.concatenate([scales.states, scales.controls, [scales.places[0]] * 2, scales.parameters])
-    slopes = _row_sums(np.asarray(point.jacobian.map(count)(v.T, d.T)).T.reshape(count, -1), point.jacobian_rows,
-                       point.jacobian_columns, point.outputs, sizes)  # fmt: skip
-    y = np.concatenate([z[where.nodes[where.at_place]].ravel(), z[where.places], z[where.parameters],
-                        z[where.integrals]])  # fmt: skip
+    slopes = _row_sums(point_slopes(compiled, where, z), point.jacobian_rows, point.jacobian_columns, point.outputs,
+                       sizes)  # fmt: skip
     sizes = np.concatenate([np.tile(scales.states, len(where.places)), scales.places, scales.parameters,
                             scales.integrals])  # fmt: skip
-    end_slopes = _row_sums(np.asarray(end.jacobian(y, constants)).reshape(1, -1), end.jacobian_rows,
-                           end.jacobian_columns, end.outputs, sizes)[0]  # fmt: skip
+    numbers = np.asarray(end.jacobian(end_inputs(where, z), compiled.constants)).reshape(1, -1)
+    end_slopes = _row_sums(numbers, end.jacobian_rows, end.jacobian_columns, end.outputs, sizes)[0]
     n = point.states
     pointwise = slopes[:, n : n + point.constraints]
     value = float(where.measures @ slopes[:, -1]) + float(end_slopes[-1])

@@ -74,6 +74,7 @@ class Program:
     mesh: Mesh
     layout: Layout
     rows: Rows
+    scales: Scales
     scale: Array  # z times scale is in SI
     row_scale: Array  # g times row_scale is in SI
     value_scale: float  # f times value_scale is the functional in SI (negative for a maximum)
@@ -354,7 +355,7 @@ def transcribe(compiled: Compiled, mesh: Mesh, scales: Scales, row_sizes: RowSiz
         "hess_lag": ca.Function("hess_lag", [z, constants, weight_f, weight_g], [ca.MX(hessian_parts[0], curvature)],
                                 ["x", "p", "lam_f", "lam_g"], ["hess_gamma_x_x"]),
     }  # fmt: skip
-    program = Program(compiled, mesh, where, rows, scale, row_scale, sign * row_sizes.value,
+    program = Program(compiled, mesh, where, rows, scales, scale, row_scale, sign * row_sizes.value,
                       np.empty(0), np.empty(0), np.empty(0), np.empty(0), gather, end_gather, functions)  # fmt: skip
     lower, upper, row_lower, row_upper = limits(compiled, where, rows)
     return replace(program, lower=lower / scale, upper=upper / scale, row_lower=row_lower / row_scale,
