@@ -53,19 +53,21 @@ def lower(problem: Problem) -> Lowered:
 
 def _in_a_circle(problem: Problem, explicit: dict[Quantity, Equation]) -> list[Quantity]:
     """Highest derivatives whose formulas need each other; all but what breaks the circle stay explicit."""
-    abbreviations = dict(problem.where)
+    through: dict[str, set[Quantity]] = {}  # what each abbreviation needs
 
-    def needs(tree: Node, seen: frozenset[str]) -> set[Quantity]:
+    def needs(tree: Node) -> set[Quantity]:
         found: set[Quantity] = set()
         for node in walk(tree):
             if isinstance(node, Name):
-                if node.name in abbreviations and node.name not in seen:
-                    found |= needs(abbreviations[node.name], seen | {node.name})
+                if node.name in through:
+                    found |= through[node.name]
                 elif (node.name, node.order) in explicit:
                     found.add((node.name, node.order))
         return found
 
-    graph = {target: needs(equation.right, frozenset()) for target, equation in explicit.items()}
+    for name, tree in problem.where:  # each uses only earlier ones
+        through[name] = needs(tree)
+    graph = {target: needs(equation.right) for target, equation in explicit.items()}
     removed: list[Quantity] = []
     settled: set[Quantity] = set()
     while len(settled) + len(removed) < len(graph):
