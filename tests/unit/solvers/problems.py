@@ -1,0 +1,86 @@
+"""Problems of the numerical core's tests, and short ways to transcribe and to minimise them."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from solvers.collocation import Family
+from solvers.functions import compile_problem
+from solvers.guess import guesses
+from solvers.ipopt import Outcome, Start, minimise
+from solvers.lowering import lower
+from solvers.mesh import Mesh, interval, uniform
+from solvers.scaling import find_row_sizes, find_scales
+from solvers.trajectory import trajectory
+from solvers.transcription import layout, transcribe
+from tests.unit.service.assemble.stating import shape, stated
+
+__all__ = ["LEAST_TIME", "compiled", "mixed_mesh", "program_of", "regulator", "shape", "solved_on", "start_of", "stated"]
+
+LEAST_TIME = {
+    "independent": {"name": "t", "from": 0, "to": "T"},
+    "parameters": {"T": {"within": [0.1, 100]}},
+    "unknowns": {"x": {}, "u": {"within": [-1, 1]}},
+    "dynamics": ["x'' = u"],
+    "functional": {"seek": "minimum", "endpoint": "T"},
+    "endpoints": ["x(0) = 1", "x'(0) = 1", "x(T) = 0", "x'(T) = 0"],
+}
+"""Least time to rest at the origin, |u| <= 1: u = -1 until 1 + sqrt(3/2), then 1; T = 1 + sqrt(6).
+
+Pontryagin et al. (1962), The Mathematical Theory of Optimal Processes, section 5 (from memory).
+"""
+
+
+def regulator(**members):
+    """x' = x + u from x = 1, least integral of (x^2 + u^2)/2 over 0 to 1."""
+    return stated(
+        **{
+            "dynamics": ["x' = x + u"],
+            "functional": {"seek": "minimum", "integrand": "(x^2 + u^2)/2"},
+            "endpoints": ["x(0) = 1"],
+        }
+        | members
+    )
+
+
+def compiled(problem):
+    return compile_problem(lower(problem))
+
+
+def mixed_mesh(stretches=1):
+    """Unequal intervals of both families and several degrees in every stretch."""
+    pieces = [
+        interval(stretch, start, end, family, degree)
+        for stretch in range(stretches)
+        for start, end, family, degree in (
+            (0.0, 0.2, Family.GAUSS, 3),
+            (0.2, 0.7, Family.RADAU, 4),
+            (0.7, 1.0, Family.GAUSS if stretch == stretches - 1 else Family.RADAU, 2),
+        )
+    ]
+    return Mesh(tuple(pieces))
+
+
+def start_of(problem, mesh):
+    """The first guess (SI) on a mesh."""
+    functions = compiled(problem)
+    return guesses(functions, mesh, layout(functions, mesh))[0].z
+
+
+def program_of(problem, mesh=None, z=None):
+    """The program of a problem on a mesh, with scales from the first guess or from values (SI)."""
+    mesh = mesh or uniform(len(problem.places) - 1, 4, 4)
+    functions = compiled(problem)
+    where = layout(functions, mesh)
+    values = start_of(problem, mesh) if z is None else z
+    scales = find_scales(functions, where, values)
+    return transcribe(functions, mesh, scales, find_row_sizes(functions, where, scales, values))
+
+
+def solved_on(problem, mesh=None, z=None):
+    """The trajectory that minimises a problem on one mesh."""
+    program = program_of(problem, mesh, z)
+    start = start_of(problem, program.mesh) if z is None else z
+    minimum = minimise(program, Start(np.asarray(start) / program.scale))
+    assert minimum.outcome is Outcome.SOLVED, minimum.status
+    return trajectory(program, minimum)
