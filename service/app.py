@@ -49,6 +49,7 @@ def create_app(settings: Settings, services: Services | None = None) -> FastAPI:
         docs_url=None,
         redoc_url=None,
         redirect_slashes=False,
+        generate_unique_id_function=lambda route: route.name,  # operations are called as their functions are
     )
     # The last one added is the outermost.
     app.add_middleware(HeadAnswers)

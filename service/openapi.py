@@ -35,6 +35,12 @@ def shape(name: str, meaning: str = "Successful answer") -> dict[str, Any]:
     return {"description": meaning, "content": {"application/json": {"schema": {"$ref": f"{_REF}{name}"}}}}
 
 
+def leading_on(response: dict[str, Any], *operations: str) -> dict[str, Any]:
+    """The entry with links: the `id` of its answer is the parameter of these operations."""
+    parameters = {"id": "$response.body#/id"}
+    return {**response, "links": {name: {"operationId": name, "parameters": parameters} for name in operations}}
+
+
 def failures(*names: str) -> dict[int | str, dict[str, Any]]:
     """`responses` for these problem types, in their order; those of one status are listed together."""
     found: dict[int | str, dict[str, Any]] = {}

@@ -13,6 +13,7 @@ from service.services import Services
 from service.settings import Settings
 
 SHUTDOWN_SECONDS = 3
+KEEP_ALIVE_SECONDS = 30  # with a short one a busy machine closes connections that are about to be used
 
 
 class ListenError(Exception):
@@ -54,6 +55,7 @@ def _serve(listener: socket.socket, services: Services, announce: Callable[[str]
         server_header=False,
         lifespan="on",
         log_level="warning",
+        timeout_keep_alive=KEEP_ALIVE_SECONDS,
         timeout_graceful_shutdown=SHUTDOWN_SECONDS,
     )
     Server(config).run(sockets=[listener])

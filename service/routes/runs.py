@@ -15,7 +15,7 @@ from service import conditional
 from service.accepting import accept, idempotency_key
 from service.errors import Fault
 from service.negotiation import JSON, preferences
-from service.openapi import PROBLEM_BODY, REFUSALS, failures, shape
+from service.openapi import PROBLEM_BODY, REFUSALS, failures, leading_on, shape
 from service.resource import has_result, resource
 from service.results import result_text
 from service.routes.needs import JsonBody, TheRun, TheServices, accepts
@@ -30,6 +30,10 @@ router = APIRouter(
 )
 
 
+_OPERATIONS = ("read_run", "read_problem", "cancel_run", "delete_run")
+_OPERATIONS_ON_A_RESULT = (*_OPERATIONS, "read_result", "read_table")
+
+
 @router.post(
     "",
     summary="Start a run",
@@ -38,8 +42,10 @@ router = APIRouter(
     openapi_extra=PROBLEM_BODY,
     responses={
         200: shape("Run", "The run that this Idempotency-Key started before"),
-        201: shape("Run", "The run ended within the time waited"),
-        202: shape("Run", "Accepted, and kept from now on"),
+        201: leading_on(
+            shape("Run", "The run ended within the time waited"), *_OPERATIONS, "read_result", "read_table"
+        ),
+        202: leading_on(shape("Run", "Accepted, and kept from now on"), *_OPERATIONS),
         **failures(*REFUSALS, "idempotency-key", "foreign-request", "busy"),
     },
 )

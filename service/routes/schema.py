@@ -15,10 +15,11 @@ from web import links
 SCHEMA_JSON = "application/schema+json"
 OPENAPI_JSON = "application/vnd.oai.openapi+json;version=3.2"
 
-router = APIRouter(tags=["schemas"])
+router = APIRouter(tags=["schemas"], default_response_class=Response)
+_SCHEMA: dict[int | str, dict[str, Any]] = {200: {"description": "The schema", "content": {SCHEMA_JSON: {}}}}
 
 
-@router.get(links.PROBLEM_SCHEMA, summary="JSON Schema of the problem document", response_model=None)
+@router.get(links.PROBLEM_SCHEMA, summary="JSON Schema of the problem document", response_model=None, responses=_SCHEMA)
 def read_problem_schema(request: Request) -> Response:
     """Draft 2020-12, with examples that validate."""
     from service.spec.schema import problem_schema
@@ -26,7 +27,7 @@ def read_problem_schema(request: Request) -> Response:
     return _schema(request, {**problem_schema(), "$id": links.PROBLEM_SCHEMA})
 
 
-@router.get(links.RESULT_SCHEMA, summary="JSON Schema of the result document", response_model=None)
+@router.get(links.RESULT_SCHEMA, summary="JSON Schema of the result document", response_model=None, responses=_SCHEMA)
 def read_result_schema(request: Request) -> Response:
     """Draft 2020-12."""
     from service.schemas import ResultDocument, json_schema
@@ -34,7 +35,12 @@ def read_result_schema(request: Request) -> Response:
     return _schema(request, json_schema(ResultDocument, links.RESULT_SCHEMA))
 
 
-@router.get(links.API_DESCRIPTION, summary="This interface as an OpenAPI document", response_model=None)
+@router.get(
+    links.API_DESCRIPTION,
+    summary="This interface as an OpenAPI document",
+    response_model=None,
+    responses={200: {"description": "The description", "content": {OPENAPI_JSON: {}}}},
+)
 def read_description(request: Request) -> Response:
     """OpenAPI 3.2."""
     return conditional.answer(request, _text(request.app.openapi()), OPENAPI_JSON)

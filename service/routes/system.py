@@ -36,7 +36,13 @@ def ready(services: TheServices) -> Response:
     raise Fault("not-ready", f"Missing: {' and '.join(missing)}.", headers={"retry-after": "1"}, members=state)
 
 
-@router.get("/metrics", summary="Figures for monitoring", response_class=Response, response_model=None)
+@router.get(
+    "/metrics",
+    summary="Figures for monitoring",
+    response_class=Response,
+    response_model=None,
+    responses={200: {"description": "The figures", "content": {"text/plain": {}}}},
+)
 def metrics(services: TheServices) -> Response:
     """Prometheus's text format."""
     return Response(services.metrics.text(), media_type=METRICS_TYPE)

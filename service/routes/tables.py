@@ -39,7 +39,7 @@ class Choice(BaseModel):
 
 TheChoice = Annotated[Choice, Query()]
 
-router = APIRouter(prefix=links.API_RUNS, tags=["tables"])
+router = APIRouter(prefix=links.API_RUNS, tags=["tables"], default_response_class=Response)
 _MEDIA_TYPES = {suffix: file.media_type.partition(";")[0] for suffix, file in FILE_FORMATS.items()}
 _ANSWERS: dict[int | str, dict[str, Any]] = {
     200: {"description": "The table", "content": {media_type: {} for media_type in _MEDIA_TYPES.values()}},
@@ -51,7 +51,10 @@ _ANSWERS: dict[int | str, dict[str, Any]] = {
     "/{id}/table.csv-metadata.json",
     summary="Describe the columns of the CSV table",
     response_model=None,
-    responses=failures("not-found", "unfinished", "no-curve", "parameters"),
+    responses={
+        200: {"description": "The metadata", "content": {CSVW_JSON: {}}},
+        **failures("not-found", "unfinished", "no-curve", "parameters"),
+    },
 )
 def read_metadata(request: Request, run: TheRun, services: TheServices, choice: TheChoice) -> Response:
     """CSV on the Web: names, units and meanings of the columns of `table.csv` with the same query."""
