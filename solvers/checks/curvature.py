@@ -1,11 +1,12 @@
 """Is the second variation positive, and if not, from where on (the first conjugate point)?
 
-The Hessian of the Lagrangian must be positive on all variations that keep dynamics and active limits.  Constraints that
-couple neighbours only enter as a penalty, (J dz)^2 / e, which keeps the matrix banded in the order of the curve; the
-few that couple everything (integrals, conditions) and the free numbers stand in a border, together with the last
-interval (without it an eigenvalue problem's band would be singular at its very eigenvalue).  The triangular factors
-L D L' of that matrix count its negative directions (Sylvester), and since its leading parts belong to variations that
-vanish from some place on, the first part that has one ends at the first conjugate point (Jacobi).
+The second variation (`variation`) must be positive on all variations that keep dynamics and active limits.  Constraints
+that couple neighbours only enter as a penalty, (J dz)^2 / e, which keeps the matrix banded in the order of the curve;
+the few that couple everything (integrals, conditions) and the free numbers stand in a border, together with the last
+interval (without it an eigenvalue problem's band would be singular at its very eigenvalue).  The pivots of the band
+count its negative directions (Sylvester), those of the Schur complement the rest (Haynsworth).  Variations that
+vanish from some place on belong to a leading part, and the first part that has a negative one ends at the first
+conjugate point (Jacobi).
 
 Both answers are safe.  A pass holds for any e, since the penalty vanishes on the variations in question.  A negative
 direction is put back onto the constraints and its second variation computed before the curve is condemned.  A margin
@@ -24,10 +25,11 @@ from dataclasses import dataclass
 import numpy as np
 import scipy.sparse as sp
 from numpy.typing import NDArray
-from scipy.sparse.linalg import splu
+from scipy.sparse.linalg import ArpackError, LinearOperator, eigsh, lsqr, splu
 
 from solvers.checks import legendre
 from solvers.checks.sampling import Sampler
+from solvers.checks.variation import second_variation
 from solvers.solution import Check, Status
 
 Array = NDArray[np.float64]
@@ -36,11 +38,13 @@ Indices = NDArray[np.int64]
 
 NAME = "conjugate points"
 MARGIN = 1e-5
-PENALTY = 1e-7
+PENALTY = 1e-5
 AT_BOUND = 1e-6
 """How near to a limit, scaled, counts as resting on it."""
 PUSHED = 1e-6
 """Multipliers, times the size of the variable and relative to its measure, that count as holding a limit."""
+NOISE = 1e-9
+"""Rounding error of the factors that leaves the margin trustworthy; entries of the Hessian are of the order of one."""
 LARGEST = 60_000
 
 
@@ -50,7 +54,7 @@ class Second:
 
     hessian: sp.csc_matrix
     jacobian: sp.csr_matrix
-    metric: Array  # the mean square of a variation is sum(metric * dz^2)
+    metric: sp.csc_matrix  # dz' metric dz is the mean square of a variation, times the size of the functional
     fixed: Flags
     resting: Flags  # on a bound
     pushed: Flags  # and held there by a multiplier
@@ -63,10 +67,11 @@ class Second:
 
 @dataclass(frozen=True, slots=True)
 class Count:
-    """How many negative directions a quadratic form has on the kernel of constraints; `first` is one of them."""
+    """How many negative directions a quadratic form has on the kernel of constraints; columns of `directions` are near
+    the first of them."""
 
     negative: int
-    first: Array | None
+    directions: Array | None
 
 
 def check(sampler: Sampler) -> Check:
@@ -85,8 +90,8 @@ def check(sampler: Sampler) -> Check:
     negative = count_negative(second, free, rows, MARGIN)
     if negative is None:
         return Check(NAME, Status.NOT_APPLICABLE, "The second variation could not be decided: its matrix is singular.")
-    if negative.negative > 0 and negative.first is not None:
-        share = proved(second, free, rows, negative.first)
+    if negative.negative > 0 and negative.directions is not None:
+        share = min(proved(second, free, rows, direction) for direction in negative.directions.T)
         if share < -MARGIN:
             place = _conjugate(sampler, second, free, rows)
             return Check(NAME, Status.FAILED, "A variation that keeps all conditions lowers the functional in second "
@@ -115,22 +120,22 @@ def second_order(sampler: Sampler) -> Second:
     size = abs(program.value_scale)
     multipliers = path.row_multipliers * program.row_scale / size
     bounds = path.bound_multipliers * program.scale / size
-    upper = _matrix(functions["hess_lag"](z, constants, 1.0, multipliers))
-    hessian = (upper + sp.triu(upper, 1).T).tocsc()
+    hessian, metric = second_variation(sampler)
     g, jacobian = functions["jac_g"](z, constants)
     values = np.asarray(g).ravel()
-    metric = np.zeros(where.size)
-    weight = where.measures * np.abs((path.places[where.stretch + 1] - path.places[where.stretch]) / sampler.span)
     share = sampler.value_size / size
-    target = where.inner if sampler.point.states else where.controls
-    metric[target] = share * weight[:, None]
-    metric[where.nodes[0]] = share * weight[0]
-    metric[where.parameters] = share
+    weight = where.measures * np.abs((path.places[where.stretch + 1] - path.places[where.stretch]) / sampler.span)
     fixed = program.lower == program.upper
-    resting = ~fixed & ((z - program.lower <= AT_BOUND) | (program.upper - z <= AT_BOUND))
+    held = np.zeros(where.size, bool)
+    held[where.controls] = fixed[where.controls]  # arcs on a bound: not given, so they have to be pushed against it
+    pull = -(np.asarray(functions["grad_f"](z, constants)[1]).ravel() + _matrix(jacobian).T @ multipliers)
+    bounds = np.where(held, pull, bounds)
+    fixed &= ~held
+    resting = ~fixed & (held | (z - program.lower <= AT_BOUND) | (program.upper - z <= AT_BOUND))
     measure = np.ones(where.size)
     measure[where.inner] = measure[where.controls] = weight[:, None]
     pushed = resting & (np.abs(bounds) > PUSHED * share * measure)
+    pushed[where.controls] |= _pushed_throughout(sampler, resting, bounds, PUSHED * share * weight)
     equalities = program.row_lower == program.row_upper
     at_limit = ~equalities & ((values - program.row_lower <= AT_BOUND) | (program.row_upper - values <= AT_BOUND))
     row_measure = np.ones(rows.count)
@@ -145,6 +150,19 @@ def second_order(sampler: Sampler) -> Second:
         border[where.controls[where.first[-2], 0] :] = True
     return Second(hessian, _matrix(jacobian).tocsr(), metric, fixed, resting, pushed, equalities, at_limit, forced,
                   long, border)  # fmt: skip
+
+
+def _pushed_throughout(sampler: Sampler, resting: Flags, bounds: Array, least: Array) -> Flags:
+    """Controls that rest on one bound all through an interval that pushes on the whole: a switch may touch its end."""
+    where, values = sampler.path.program.layout, sampler.path.controls
+    if not values.size:
+        return np.zeros(values.shape, bool)
+    controls, first = where.controls, where.first[:-1]
+    above = np.abs(sampler.bounds[3] - values) < np.abs(values - sampler.bounds[2])
+    push = np.where(above, bounds[controls], -bounds[controls])
+    whole = np.minimum.reduceat(np.where(resting[controls], push, -np.inf), first, axis=0) >= -least.max()
+    whole &= np.add.reduceat(push, first, axis=0) > np.add.reduceat(least, first)[:, None]
+    return np.asarray(np.repeat(whole, np.diff(where.first), axis=0))
 
 
 def _matrix(value: object) -> sp.csc_matrix:
@@ -164,7 +182,7 @@ def count_negative(second: Second, free: Flags, rows: Flags, shift: float) -> Co
     if not len(columns):
         return Count(0, None)
     local, coupling = _normal(second.jacobian[near][:, columns]), _normal(second.jacobian[far][:, columns])
-    hessian = second.hessian[columns][:, columns] + sp.diags(shift * second.metric[columns])
+    hessian = second.hessian[columns][:, columns] + shift * second.metric[columns][:, columns]
     penalized = (hessian + local.T @ local / PENALTY).tocsc()
     whole = sp.bmat([[penalized, coupling.T], [coupling, -PENALTY * sp.eye(coupling.shape[0])]], format="csc")
     size = len(inside)
@@ -184,11 +202,16 @@ def count_negative(second: Second, free: Flags, rows: Flags, shift: float) -> Co
         outer = np.linalg.lstsq(rest, vector[size:] - side.T @ inner, rcond=None)[0] if len(rest) else vector[size:]
         return np.concatenate([inner - solve(side @ outer), outer])
 
-    vector = np.sin(1.0 + np.arange(whole.shape[0]))
-    for _ in range(8):  # inverse iteration: towards the eigenvalue nearest to zero
-        vector = inverse(vector)
-        vector /= np.linalg.norm(vector)
-    return Count(negative, vector[: len(columns)])
+    operator = LinearOperator(whole.shape, matvec=inverse, dtype=float)
+    wanted = min(3, whole.shape[0] - 1)
+    if wanted < 1:
+        return Count(negative, np.ones((len(columns), 1)))
+    start = np.sin(1.0 + np.arange(whole.shape[0]))
+    try:
+        vectors = eigsh(operator, wanted, which="SA", v0=start, tol=1e-4, maxiter=200)[1]
+    except ArpackError as error:
+        vectors = getattr(error, "eigenvectors", None)
+    return Count(negative, None if vectors is None or not vectors.size else vectors[: len(columns)])
 
 
 def _factorized(band: sp.csc_matrix) -> tuple[Callable[[Array], Array] | None, int]:
@@ -199,9 +222,11 @@ def _factorized(band: sp.csc_matrix) -> tuple[Callable[[Array], Array] | None, i
         factors = splu(band, permc_spec="NATURAL", diag_pivot_thresh=0.0, options={"SymmetricMode": True})
     except RuntimeError:  # exactly singular
         return None, 0
-    probe = np.cos(np.arange(band.shape[0]))
-    trusted = np.array_equal(factors.perm_r, np.arange(band.shape[0]))
-    if not trusted or not np.abs(band @ factors.solve(probe) - probe).max() < 1e-4:
+    order = np.argsort(factors.perm_c)
+    if not np.array_equal(factors.perm_r, factors.perm_c):
+        return None, 0
+    lost = np.abs((factors.L @ factors.U) - band[order][:, order]).max()
+    if not lost < NOISE:  # the pivots' signs are those of a matrix this near to the one meant
         return None, 0
     return factors.solve, int((factors.U.diagonal() < 0).sum())
 
@@ -218,9 +243,9 @@ def proved(second: Second, free: Flags, rows: Flags, direction: Array) -> float:
     columns = np.concatenate([np.flatnonzero(free & ~second.border), np.flatnonzero(free & second.border)])
     jacobian = _normal(second.jacobian[np.flatnonzero(rows)][:, columns])
     for _ in range(2):
-        direction = direction - sp.linalg.lsqr(jacobian, jacobian @ direction, atol=1e-14, btol=1e-14)[0]
+        direction = direction - lsqr(jacobian, jacobian @ direction, atol=1e-14, btol=1e-14)[0]
     bend = float(direction @ (second.hessian[columns][:, columns] @ direction))
-    size = float(second.metric[columns] @ direction**2)
+    size = float(direction @ (second.metric[columns][:, columns] @ direction))
     return bend / size if size > 0 else 0.0
 
 

@@ -90,8 +90,8 @@ def _advanced(sampler: Sampler, intervals: Indices, steps: int) -> Array:
             for stage in range(_STAGES):
                 inner = state + np.tensordot(_A[stage, :stage], slopes[:stage], 1) / steps
                 slopes[stage] = _rates(sampler, intervals, inner, controls[:, step, stage], local[step, stage])
-            state = state + np.tensordot(_B, slopes, 1) / steps
-    return np.asarray(state)
+            state += np.tensordot(_B, slopes, 1) / steps
+    return state
 
 
 def _rates(sampler: Sampler, intervals: Indices, states: Array, controls: Array, local: float) -> Array:
@@ -108,7 +108,7 @@ def _stiff(sampler: Sampler, interval: int, accuracy: float) -> Array | None:
 
     def slope(local: float, state: Array) -> Array:
         controls = sampler.controls_at(chosen, np.array([local]))
-        return _rates(sampler, chosen, state[None, :], controls, local)[0]
+        return np.asarray(_rates(sampler, chosen, state[None, :], controls, local)[0])
 
     try:
         answer = solve_ivp(slope, (0.0, 1.0), sampler.path.nodes[interval], method="LSODA", rtol=max(accuracy, 1e-12),

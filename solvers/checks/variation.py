@@ -1,0 +1,118 @@
+"""The second variation of the functional as a quadratic form of the program's variables, and the size of a variation.
+
+The variations are those of the stored polynomials, but the integral of the Hamiltonian's second derivatives over them
+is taken between the nodes.  So a variation that hides from all collocation points (on a singular arc nothing else would
+notice it) counts for what it is.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+import scipy.sparse as sp
+from numpy.polynomial import legendre
+from numpy.typing import NDArray
+
+from solvers.checks.sampling import HALF_WEIGHTS, HALVES, Sampler, mapped
+
+Array = NDArray[np.float64]
+Indices = NDArray[np.int64]
+
+
+def second_variation(sampler: Sampler) -> tuple[sp.csc_matrix, sp.csc_matrix]:
+    """The second variation, and the mean square of a variation of the states times the size of the functional.
+
+    Both for scaled variables and relative to the program's scale of the value.  Where there are no states the controls'
+    mean square is taken.
+    """
+    program, where = sampler.path.program, sampler.path.program.layout
+    bends, sizes = _bends(sampler), _sizes(sampler)
+    rows, columns, forms, norms = [], [], [], []
+    schemes = {id(i.scheme): i.scheme for i in program.mesh.intervals}
+    owners = np.array([id(i.scheme) for i in program.mesh.intervals])
+    for key, scheme in schemes.items():
+        members = np.flatnonzero(owners == key)
+        trial = _trial(sampler, scheme.state_modes, scheme.control_modes)
+        local = _local(sampler, members, scheme.degree)
+        block = (len(members), local.shape[1], local.shape[1])
+        rows.append(np.broadcast_to(local[:, :, None], block).ravel())
+        columns.append(np.broadcast_to(local[:, None, :], block).ravel())
+        forms.append(_condensed(trial, bends[members]).ravel())
+        norms.append(_condensed(trial, sizes[members]).ravel())
+    row, column = np.concatenate(rows), np.concatenate(columns)
+    scale = program.scale[row] * program.scale[column] / abs(program.value_scale)
+    shape = (where.size, where.size)
+    hessian = sp.coo_matrix((np.concatenate(forms) * scale, (row, column)), shape=shape)
+    metric = sp.coo_matrix((np.concatenate(norms) * scale, (row, column)), shape=shape)
+    numbers = np.zeros(where.size)
+    numbers[where.parameters] = sampler.value_size / abs(program.value_scale)
+    return (hessian + _at_places(sampler)).tocsc(), (metric + sp.diags(numbers)).tocsc()
+
+
+def _bends(sampler: Sampler) -> Array:
+    """Second derivatives of the weighed outputs by the inputs, times the quadrature weights (N x Q x I x I)."""
+    sample, point = sampler.halves, sampler.point
+    numbers = mapped(point.hessian, sample.v, sample.d, sampler.weights(sample))
+    numbers = numbers * (np.tile(HALF_WEIGHTS, sampler.count) * sampler.width[sample.interval])[:, None]
+    bends = np.zeros((len(sample.local), point.inputs, point.inputs))
+    for entry, (row, column) in enumerate(zip(point.hessian_rows, point.hessian_columns, strict=True)):
+        bends[:, row, column] = bends[:, column, row] = numbers[:, entry]
+    bends[~np.isfinite(bends)] = 0.0
+    return bends.reshape(sampler.count, len(HALVES), point.inputs, point.inputs)
+
+
+def _sizes(sampler: Sampler) -> Array:
+    """The same for the sum of squares of the states relative to their sizes."""
+    n, m = sampler.point.states, sampler.point.controls
+    kind = slice(0, n) if n else slice(n, n + m)
+    inverse = np.zeros(sampler.point.inputs)
+    inverse[kind] = 1 / sampler.input_sizes[kind] ** 2
+    share = np.abs(sampler.halves.measure / sampler.span).reshape(sampler.count, -1)
+    return np.asarray(share[:, :, None, None] * np.diag(inverse) * sampler.value_size)
+
+
+def _trial(sampler: Sampler, state_modes: Array, control_modes: Array) -> Array:
+    """The inputs at the places of the grid from an interval's own variables (Q x I x D)."""
+    n, m, rest = sampler.point.states, sampler.point.controls, 2 + len(sampler.problem.parameters)
+    degree = len(control_modes)
+    states = legendre.legvander(2 * HALVES - 1, degree) @ state_modes
+    controls = legendre.legvander(2 * HALVES - 1, degree - 1) @ control_modes
+    trial = np.zeros((len(HALVES), n + m + rest, (degree + 1) * n + degree * m + rest))
+    for i in range(n):
+        trial[:, i, i : (degree + 1) * n : n] = states
+    for i in range(m):
+        trial[:, n + i, (degree + 1) * n + i : (degree + 1) * n + degree * m : m] = controls
+    trial[:, n + m :, (degree + 1) * n + degree * m :] = np.eye(rest)
+    return trial
+
+
+def _local(sampler: Sampler, members: Indices, degree: int) -> Indices:
+    """Where the variables of each interval stand in z (G x D), in the order of the trial's columns."""
+    where = sampler.path.program.layout
+    points = where.first[members][:, None] + np.arange(degree)
+    stretch = sampler.stretch[members]
+    count = len(members)
+    ends = np.column_stack([where.places[stretch], where.places[stretch + 1]])
+    own = [where.nodes[members], *(part[points].reshape(count, -1) for part in (where.inner, where.controls))]
+    return np.hstack([*own, ends, np.tile(where.parameters, (count, 1))]).astype(np.int64)
+
+
+def _condensed(trial: Array, forms: Array) -> Array:
+    """Sum over the grid of trial' form trial, for each interval (G x D x D)."""
+    count, places, inputs, _ = forms.shape
+    applied = (forms @ trial).reshape(count, places * inputs, -1)
+    return np.asarray(trial.reshape(places * inputs, -1).T @ applied)
+
+
+def _at_places(sampler: Sampler) -> sp.coo_matrix:
+    """Second derivatives of the endpoint term and of the conditions, weighed."""
+    path, program, end = sampler.path, sampler.path.program, sampler.compiled.end
+    y = path.z[program.end_gather]
+    weights = np.append(path.row_multipliers[program.rows.conditions :], sampler.sign)
+    numbers = mapped(end.hessian, y[None, :], sampler.constants[None, :], weights[None, :])[0]
+    rows, columns = np.array(end.hessian_rows, dtype=int), np.array(end.hessian_columns, dtype=int)
+    mixed = rows != columns
+    row = program.end_gather[np.concatenate([rows, columns[mixed]])]
+    column = program.end_gather[np.concatenate([columns, rows[mixed]])]
+    scale = program.scale[row] * program.scale[column] / abs(program.value_scale)
+    values = np.concatenate([numbers, numbers[mixed]]) * scale
+    return sp.coo_matrix((values, (row, column)), shape=(program.layout.size,) * 2)
