@@ -29,33 +29,19 @@ _MEANINGS = {
 
 _REASONS = {
     "infeasible": ("No curve meets all conditions", "Loosen or drop one of these conditions and solve again."),
-    "undefined": (
-        "A formula is not defined where the search begins",
-        "Give bounds or a guess that keep the sub-expression inside its domain.",
-    ),
-    "out of time": (
-        "The time limit ended the search",
-        "Raise solve.time_limit, ask for a looser solve.tolerance, or give a guess near the answer.",
-    ),
+    "undefined": ("A formula is not defined where the search begins", ""),
+    "out of time": ("The time limit ended the search", ""),
     "stopped": ("Stopped before the end", "Edit the problem or solve it again as it is."),
-    "unbounded": (
-        "The value runs away",
-        "A condition that holds the curve or the value back is missing: add bounds, or an integral condition.",
-    ),
-    "no progress": (
-        "The search got stuck",
-        "Give a guess, bounds on the unknowns, or several starts (solve.starts).",
-    ),
-    "points limit": (
-        "The mesh reached its limit before the tolerance",
-        "Raise solve.points or ask for a looser solve.tolerance.",
-    ),
-    "memory": ("The solver reached its memory limit", "Ask for fewer points (solve.points) or a looser tolerance."),
-    "crash": (
-        "The solver broke off",
-        "This is our fault, not the problem's. Solve it again; if it breaks off again, report the problem hash below.",
+    "unbounded": ("The value runs away", ""),
+    "no progress": ("The search got stuck", ""),
+    "points limit": ("The mesh reached its limit before the tolerance", ""),
+    "failed": (
+        "The run failed",
+        "Solve it again, perhaps with a looser tolerance or fewer points. If it fails again, the hash of the problem "
+        "below says which problem it was.",
     ),
 }
+"""Reason -> heading, and advice where the sentence of the diagnosis gives none."""
 
 _CHECKS = {
     "motion": "dynamics integrated again from the stored controls, interval by interval",

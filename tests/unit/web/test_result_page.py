@@ -8,11 +8,13 @@ from html.parser import HTMLParser
 
 import pytest
 
+from solvers.pursuit import End
+from solvers.solution import Verdict
 from web.caution import CAUTION
 from web.pages.progress import progress_page
 from web.pages.result import result_page
 from web.render import render
-from web.verdicts import verdict_sentence
+from web.verdicts import reason_heading, verdict_sentence
 
 BASE = "http://bench.example:8000/"
 
@@ -96,10 +98,10 @@ def test_a_run_that_crashed_shows_its_problem_and_reason():
         "id": "abc",
         "state": "failed",
         "problem": {"title": "Hose"},
-        "diagnosis": {"reason": "crash", "sentence": "died 3 times, signal 11", "findings": []},
+        "diagnosis": {"reason": "failed", "sentence": "The run failed: its worker died 3 times.", "findings": []},
     }
     text = render(page(bare))
-    assert "The solver broke off" in text and "died 3 times" in text and "failed" in text
+    assert '<h2 id="diagnosis">The run failed</h2>' in text and "died 3 times" in text
 
 
 def test_checks_say_their_outcome_in_words_with_figure_and_place(hose):
@@ -167,3 +169,13 @@ def test_the_page_of_a_run_on_its_way_works_without_script():
     assert 'method="post" action="/runs/abc/stop"' in text
     assert "Waiting for a free worker." in text and "1 min 30 s" in text and "along x [m]" in text
     assert Outline(text).open == []
+
+
+def test_every_reason_of_the_solver_has_a_heading():
+    ends = set(End) - {End.CONVERGED, End.SETTLED}
+    assert all(not reason_heading(end.value)[0].startswith("No full result") for end in ends)
+
+
+def test_every_verdict_has_a_meaning():
+    empty = verdict_sentence(None, [])
+    assert all(verdict_sentence(verdict.value, []) != empty for verdict in Verdict)
