@@ -177,9 +177,9 @@ def _solved(body: bytes) -> dict[str, Any]:
 
     with _refusals(body):
         tolerance = read(body).solve.tolerance
-        from service.jobs import perform  # loads the solver
+        with interruptible() as stop, progress_bar(tolerance) as report:
+            from service.jobs import perform  # loads the solver
 
-        with progress_bar(tolerance) as report, interruptible() as stop:
             return perform(body.decode("utf-8-sig"), report, stop)
     raise AssertionError("a refusal exits")
 

@@ -1,14 +1,15 @@
 """Small pictures of the samples: drawn once from their solutions and kept beside them.
 
-`python -m service.sketches` solves all samples and writes the file anew; a test holds it to fresh solutions.
+`python -m service.sketches` solves the samples and writes the file anew; a test holds it to fresh solutions.
 """
 
 from __future__ import annotations
 
 import json
+import sys
 from collections.abc import Mapping
 from functools import cache
-from importlib.resources import files
+from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -17,18 +18,19 @@ from service import samples
 from web.thumbnails import Sketch
 from web.trajectory import read_trajectory
 
+_STORED = Path(__file__).parent / "samples" / "sketches" / "curves.json"
 POINTS = 61
 DIGITS = 4
-_SHAPES = ("chute", "chute-over-duct", "hose", "hose-over-bench", "lens-rod", "sleeve", "sleeve-limit")
+_SHAPES = ("chute", "chute-over-duct", "hose", "hose-over-bench", "sleeve", "sleeve-limit")
 _DOWNWARDS = ("chute", "chute-over-duct")
-_DRAWN: Mapping[str, tuple[str, ...]] = {"crucible": ("x", "q")}
+_DRAWN: Mapping[str, tuple[str, ...]] = {"crucible": ("x", "q"), "fin": ("y",), "sample-rocket": ("h", "v")}
 """Unknowns to draw where it is not only the first one; the second and further ones are scaled to the first."""
 
 
 @cache
 def sketches() -> Mapping[str, Sketch]:
     """The picture of every sample that has one."""
-    stored = json.loads((files(samples) / "sketches" / "curves.json").read_text("utf-8"))
+    stored = json.loads(_STORED.read_text("utf-8"))
     return {name: _sketch(name, [_points(line) for line in lines]) for name, lines in stored.items()}
 
 
@@ -66,3 +68,21 @@ def _points(line: list[list[float]]) -> tuple[tuple[float, float], ...]:
 
 def _short(number: float) -> float:
     return float(f"{number:.{DIGITS}g}")
+
+
+def main() -> None:
+    """Solve the samples, those named as arguments or all, and keep their curves."""
+    from service.jobs import perform
+
+    stored = json.loads(_STORED.read_text("utf-8"))
+    for name in sys.argv[1:] or samples.names():
+        result = perform(samples.text(name), lambda event: None, lambda: False)
+        if result["curve"] is not None:
+            stored[name] = drawn(name, result)
+    ordered = {name: stored[name] for name in samples.names() if name in stored}
+    lines = [f"{json.dumps(name)}: {json.dumps(curves)}" for name, curves in ordered.items()]
+    _STORED.write_text("{\n" + ",\n".join(lines) + "\n}\n", "utf-8")
+
+
+if __name__ == "__main__":
+    main()
