@@ -13,16 +13,14 @@ from solvers.mesh import Mesh, interval, uniform
 from solvers.scaling import find_row_sizes, find_scales
 from solvers.trajectory import trajectory
 from solvers.transcription import layout, transcribe
-from tests.unit.service.assemble.stating import shape, stated
-
-__all__ = ["LEAST_TIME", "compiled", "mixed_mesh", "program_of", "regulator", "shape", "solved_on", "start_of", "stated"]
+from tests.unit.service.assemble import stating
 
 LEAST_TIME = {
     "independent": {"name": "t", "from": 0, "to": "T"},
     "parameters": {"T": {"within": [0.1, 100]}},
     "unknowns": {"x": {}, "u": {"within": [-1, 1]}},
     "dynamics": ["x'' = u"],
-    "functional": {"seek": "minimum", "endpoint": "T"},
+    "functional": {"endpoint": "T"},
     "endpoints": ["x(0) = 1", "x'(0) = 1", "x(T) = 0", "x'(T) = 0"],
 }
 """Least time to rest at the origin, |u| <= 1: u = -1 until 1 + sqrt(3/2), then 1; T = 1 + sqrt(6).
@@ -31,16 +29,30 @@ Pontryagin et al. (1962), The Mathematical Theory of Optimal Processes, section 
 """
 
 
+def stated(**members):
+    """x' = u from 0 to 1 with the least integral of u^2, some members replaced; a minimum unless told otherwise."""
+    return stating.stated(**_sought(members))
+
+
+def shape(**members):
+    """The shortest curve y(x) over 0 to 3 without conditions, with some members replaced."""
+    return stating.shape(**_sought(members))
+
+
+def _sought(members):
+    if "functional" not in members:
+        return members
+    return members | {"functional": {"seek": "minimum"} | members["functional"]}
+
+
 def regulator(**members):
     """x' = x + u from x = 1, least integral of (x^2 + u^2)/2 over 0 to 1."""
-    return stated(
-        **{
-            "dynamics": ["x' = x + u"],
-            "functional": {"seek": "minimum", "integrand": "(x^2 + u^2)/2"},
-            "endpoints": ["x(0) = 1"],
-        }
-        | members
-    )
+    given = {
+        "dynamics": ["x' = x + u"],
+        "functional": {"integrand": "(x^2 + u^2)/2"},
+        "endpoints": ["x(0) = 1"],
+    }
+    return stated(**given | members)
 
 
 def compiled(problem):

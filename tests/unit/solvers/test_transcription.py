@@ -1,0 +1,232 @@
+"""The program: its layout, and its hand-made derivatives against CasADi's automatic ones of the same functions."""
+
+import casadi as ca
+import numpy as np
+import pytest
+
+from solvers.collocation import Family
+from solvers.gauge import in_parametric_form
+from solvers.mesh import uniform
+from solvers.transcription import layout
+from tests.unit.solvers.problems import LEAST_TIME, compiled, mixed_mesh, program_of, shape, stated
+
+FALL = shape(
+    unknowns={"y": {"unit": "m", "within": [0, None]}},
+    functional={"integrand": "sqrt((1 + y'^2)/y)"},
+    endpoints=["y(0) = 0", "y(3) = 1"],
+)
+"""The curve of quickest descent: in parametric form it starts at rest."""
+
+PROBLEMS = {
+    "free end place": lambda: stated(**LEAST_TIME | {"functional": {"integrand": "u^2 + x*x'", "endpoint": "T^2"}}),
+    "way points": lambda: stated(
+        endpoints=["x(0) = 0", "x(0.3) = 1/2", "x(1) = 1", "x(0.3)*x(1) >= -2", "x(0.7)^2 <= 4"],
+        functional={"integrand": "u^2 + t*x^3"},
+    ),
+    "pointwise constraints": lambda: stated(
+        constraints=["x^2 + u^2 <= 4", "x*u = sin(t)", "u >= -3"],
+        unknowns={"x": {"within": [-5, 5]}, "u": {}},
+        endpoints=["x(0) = 0"],
+    ),
+    "integral conditions": lambda: shape(
+        functional={"integrand": "y*sqrt(1 + y'^2)"},
+        constraints=["integral(sqrt(1 + y'^2)) = 4.2", "integral(y^2)*y(0) <= 30"],
+        endpoints=["y(0)*y(3) >= 0.1"],
+    ),
+    "several integrals in one condition": lambda: shape(
+        functional={"integrand": "x*y"}, constraints=["integral(y'^2)/integral(y^2) <= 2"]
+    ),
+    "parameters": lambda: stated(
+        parameters={"k": {}, "q": {"within": [0, 3]}},
+        constants={"c": 2.5},
+        dynamics=["x' = k*u - q*x^2*c"],
+        functional={"integrand": "u^2*q + k^2", "endpoint": "k*q*x(1)"},
+        endpoints=["x(0) = 0", "x(1) + k^2 = q"],
+    ),
+    # An end place that is a parameter of the dynamics too: two inputs of one function are the same variable, so that
+    # mixed second derivatives fall on the diagonal, where they count twice.
+    "end place in the dynamics": lambda: stated(
+        **LEAST_TIME
+        | {
+            "dynamics": ["x'' = u*T^2 - x*t/T"],
+            "functional": {"integrand": "u^2*T^3 + T*t^2", "endpoint": "T*x'(T)"},
+            "constraints": ["x*T <= 9", "u*t*T >= -50"],
+            "endpoints": ["x(0) = 1", "x'(0) = 1", "x(T)*T^2 = 0"],
+        }
+    ),
+    "both ends free": lambda: stated(
+        independent={"name": "t", "from": "a", "to": "b"},
+        parameters={"a": {"within": [-1, 0.4]}, "b": {"within": [0.5, 3]}},
+        dynamics=["x' = u + a*b*x + t^2"],
+        functional={"integrand": "u^2*b/(1 + a^2)", "endpoint": "(b - a)^2"},
+        endpoints=["x(a) = a^2", "x(b)*a = 1 - b"],
+    ),
+    "free place inside": lambda: stated(
+        parameters={"m": {"within": [0.2, 0.8]}},
+        dynamics=["x' = u*m + t*x"],
+        functional={"integrand": "u^2*t*m", "endpoint": "x(m)^2*m"},
+        endpoints=["x(0) = 0", "x(m) = m^2", "x(1) = 1"],
+    ),
+    "control at an end": lambda: in_parametric_form(FALL, {}, squared=True).problem,
+    "maximum": lambda: stated(functional={"seek": "maximum", "integrand": "x*u - u^2", "endpoint": "x(1)^3"}),
+    "implicit dynamics": lambda: stated(dynamics=["x'*exp(x') = u*x"]),
+    "no functional along the curve": lambda: stated(functional={"endpoint": "x(1)^2"}),
+    "no constraint at all": lambda: shape(functional={"integrand": "(y - x)^2*(1 + y'^2)"}, endpoints=[]),
+}
+
+
+@pytest.fixture(scope="module", params=PROBLEMS)
+def program(request):
+    problem = PROBLEMS[request.param]()
+    mesh = mixed_mesh(len(problem.places) - 1)
+    rng = np.random.default_rng(7)
+    where = layout(compiled(problem), mesh)
+    z = rng.uniform(0.5, 1.5, where.size)  # sizes that differ from variable to variable
+    z[where.places] = np.sort(z[where.places])
+    return program_of(problem, mesh, z)
+
+
+@pytest.fixture
+def at(program):
+    """A random point (scaled) with multipliers."""
+    rng = np.random.default_rng(11)
+    z = rng.uniform(0.5, 1.5, program.layout.size) / program.scale
+    return z, rng.normal(), rng.normal(size=program.rows.count)
+
+
+def own(program, name, *arguments):
+    return program.functions[name](*arguments)
+
+
+def automatic(program, expression, *inputs):
+    return ca.Function("automatic", [program.functions["z"], program.functions["c"], *inputs], [expression])
+
+
+def close(found, wanted):
+    np.testing.assert_allclose(np.asarray(found), np.asarray(wanted), rtol=1e-9, atol=1e-9)
+
+
+def test_gradient(program, at):
+    constants = list(program.compiled.constants)
+    f, gradient = own(program, "grad_f", at[0], constants)
+    close(f, automatic(program, program.functions["f"])(at[0], constants))
+    close(gradient, automatic(program, ca.gradient(program.functions["f"], program.functions["z"]))(at[0], constants))
+
+
+def test_jacobian(program, at):
+    constants = list(program.compiled.constants)
+    g, jacobian = own(program, "jac_g", at[0], constants)
+    assert g.shape == (program.rows.count, 1)
+    close(g, automatic(program, program.functions["g"])(at[0], constants))
+    wanted = automatic(program, ca.jacobian(program.functions["g"], program.functions["z"]))(at[0], constants)
+    close(ca.densify(jacobian), ca.densify(wanted))
+
+
+def test_hessian_of_the_lagrangian_is_its_upper_triangle(program, at):
+    constants = list(program.compiled.constants)
+    z, weight_f, weights = at
+    found = own(program, "hess_lag", z, constants, weight_f, weights)
+    symbols = ca.MX.sym("lam_f"), ca.MX.sym("lam_g", program.rows.count)
+    lagrangian = symbols[0] * program.functions["f"] + ca.dot(symbols[1], program.functions["g"])
+    hessian = ca.hessian(lagrangian, program.functions["z"])[0]
+    wanted = automatic(program, hessian, *symbols)(z, constants, weight_f, weights)
+    close(ca.densify(found), np.triu(np.asarray(ca.densify(wanted))))
+
+
+def test_the_hessian_counts_an_end_place_in_the_dynamics_on_the_diagonal():
+    """The case above is not vacuous: the end place has curvature of its own."""
+    program = program_of(PROBLEMS["end place in the dynamics"](), mixed_mesh())
+    place = int(program.layout.places[-1])
+    assert place in program.layout.parameters
+    pattern = program.functions["hess_lag"].sparsity_out(0)
+    assert pattern.has_nz(place, place)
+
+
+def test_indices_of_the_layout_are_a_partition(program):
+    where = program.layout
+    groups = [np.union1d(where.nodes, where.inner), where.controls.ravel(), np.union1d(where.places, where.parameters),
+              where.integrals]  # fmt: skip
+    np.testing.assert_array_equal(np.sort(np.concatenate(groups)), np.arange(where.size))
+
+
+def test_points_at_the_right_end_of_radau_intervals_are_the_next_nodes(program):
+    where = program.layout
+    for k, piece in enumerate(program.mesh.intervals):
+        shared = np.array_equal(where.inner[where.first[k + 1] - 1], where.nodes[k + 1])
+        assert shared == (piece.scheme.family is Family.RADAU)
+
+
+def test_measures_of_the_points_add_up_to_every_stretch(program):
+    where = program.layout
+    totals = np.bincount(where.stretch, weights=where.measures)
+    np.testing.assert_allclose(totals, 1.0, rtol=1e-14)
+    assert np.all((where.fractions > 0) & (where.fractions <= 1))
+
+
+def test_nodes_at_the_places(program):
+    where = program.layout
+    assert where.at_place[0] == 0
+    assert where.at_place[-1] == len(program.mesh.intervals)
+    starts = [piece.stretch for piece in program.mesh.intervals]
+    assert [starts[node] for node in where.at_place[:-1]] == list(range(program.mesh.stretches))
+
+
+def test_every_row_has_its_limits(program):
+    rows = program.rows
+    assert len(program.row_lower) == len(program.row_upper) == len(program.row_scale) == rows.count
+    assert np.all(program.row_lower <= program.row_upper)
+    assert np.all(program.row_scale > 0)
+    np.testing.assert_array_equal(program.row_lower[: rows.pointwise], 0)
+    np.testing.assert_array_equal(program.row_upper[: rows.pointwise], 0)
+
+
+def test_an_exact_polynomial_has_no_defect():
+    """x = t^4, u = 4t^3 solves x' = u; degree 4 holds it, on Radau and on Gauss intervals."""
+    program = program_of(stated(), uniform(1, 3, 4, Family.GAUSS))
+    where = program.layout
+    points, breaks = where.fractions, program.mesh.breaks(np.array([0.0, 1.0]))
+    z = np.zeros(where.size)
+    z[where.places] = [0, 1]
+    z[where.nodes[:, 0]], z[where.inner[:, 0]], z[where.controls[:, 0]] = breaks**4, points**4, 4 * points**3
+    f, _ = own(program, "grad_f", z / program.scale, [])
+    g, _ = own(program, "jac_g", z / program.scale, [])
+    np.testing.assert_allclose(np.asarray(g), 0, atol=1e-13)
+    assert float(f) * program.value_scale == pytest.approx(16 / 7, rel=1e-13)
+
+
+def test_a_maximum_is_the_minimum_of_the_opposite():
+    least, greatest = (program_of(stated(functional={"seek": seek, "integrand": "u^2"})) for seek in
+                       ("minimum", "maximum"))  # fmt: skip
+    z = np.random.default_rng(3).normal(size=least.layout.size)
+    f = [float(own(program, "grad_f", z / program.scale, [])[0]) for program in (least, greatest)]
+    assert f[0] == -f[1]
+    assert least.value_scale == -greatest.value_scale > 0
+
+
+def graph_sizes(program):
+    return [program.functions[name].n_nodes() for name in ("grad_f", "jac_g", "hess_lag")]
+
+
+def test_the_graph_of_the_program_does_not_grow_with_the_mesh():
+    """All cost of set-up that depends on the mesh is in constant arrays."""
+    problem = PROBLEMS["parameters"]()
+    few, many = (program_of(problem, uniform(1, count, degree)) for count, degree in ((2, 2), (50, 5)))
+    assert many.layout.size > 30 * few.layout.size
+    assert graph_sizes(few) == graph_sizes(many)
+    assert max(graph_sizes(many)) < 100
+
+
+def test_the_graph_does_not_grow_with_the_ways_in_which_the_mesh_is_cut():
+    problem = PROBLEMS["parameters"]()
+    sizes = [graph_sizes(program_of(problem, mesh)) for mesh in (uniform(1, 3, 3), mixed_mesh())]
+    np.testing.assert_allclose(*sizes, atol=1)  # CasADi may put in a copy
+
+
+def test_the_cases_reach_every_kind_of_row():
+    kinds = {name: compiled(build()) for name, build in PROBLEMS.items()}
+    assert len(kinds["control at an end"].rims) == 2
+    assert len(kinds["implicit dynamics"].pointwise) == 1
+    assert len(kinds["pointwise constraints"].pointwise) == 2
+    assert kinds["integral conditions"].point.integrals == 2
+    assert len(kinds["way points"].fixed) == 3
+    assert len(kinds["way points"].conditions) == 2
