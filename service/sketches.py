@@ -23,7 +23,7 @@ POINTS = 61
 DIGITS = 4
 _SHAPES = ("chute", "chute-over-duct", "hose", "hose-over-bench", "sleeve", "sleeve-limit")
 _DOWNWARDS = ("chute", "chute-over-duct")
-_DRAWN: Mapping[str, tuple[str, ...]] = {"crucible": ("x", "q"), "fin": ("y",), "sample-rocket": ("h", "v")}
+_DRAWN: Mapping[str, tuple[str, ...]] = {"crucible": ("x", "q"), "fin": ("y",)}
 """Unknowns to draw where it is not only the first one; the second and further ones are scaled to the first."""
 
 
