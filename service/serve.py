@@ -63,7 +63,8 @@ def _serve(listener: socket.socket, services: Services, announce: Callable[[str]
 
 def _listener(settings: Settings) -> socket.socket:
     family = socket.AF_INET6 if ":" in settings.host else socket.AF_INET
-    listener = socket.socket(family, socket.SOCK_STREAM)
+    # With the protocol named, asyncio turns Nagle's delay off, which else adds 40 ms to most answers.
+    listener = socket.socket(family, socket.SOCK_STREAM, socket.IPPROTO_TCP)
     try:
         listener.setsockopt(socket.SOL_SOCKET, socket.SO_REUSEADDR, 1)
         listener.bind((settings.host, settings.port))
