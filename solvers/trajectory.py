@@ -24,6 +24,9 @@ from solvers.transcription import Layout, Program, row_order
 
 Array = NDArray[np.float64]
 
+BINDING = 1e-5
+"""Least push of a pointwise constraint that binds, over its size and relative to the value's."""
+
 
 @dataclass(frozen=True, slots=True)
 class Trajectory:
@@ -132,10 +135,12 @@ def costate_curve(path: Trajectory) -> Curve:
         primed(quantity): tuple(sign * part[:, index] for part in modes)
         for index, quantity in enumerate(compiled.lowered.states)
     }
-    largest = np.abs(path.multipliers).max(initial=0.0)
+    rows = path.program.rows
+    sizes = path.program.row_scale[rows.pointwise : rows.rims].reshape(path.multipliers.shape)
+    pushes = np.abs(path.row_multipliers[rows.pointwise : rows.rims].reshape(sizes.shape) * sizes).sum(axis=0)
     multiplier_modes = _modes(path.program, path.multipliers, None)
     for index, condition in enumerate(compiled.pointwise):
-        if np.abs(path.multipliers[:, index]).max(initial=0.0) > 1e-6 * largest:
+        if pushes[index] > BINDING * abs(path.program.value_scale):
             functions[condition.label] = tuple(sign * part[:, index] for part in multiplier_modes)
     return Curve(path.breaks, functions)
 
@@ -190,7 +195,8 @@ def carry(path: Trajectory, mesh: Mesh, where: Layout) -> Carried:
 
 def _sample(breaks: Array, modes: list[Array], places: Array) -> Array:
     """Piecewise polynomials at places of another mesh (len(places) x components)."""
-    owner = np.clip(np.searchsorted(breaks, places, side="left") - 1, 0, len(modes) - 1)
+    rounding = 4 * np.finfo(float).eps * np.abs(breaks).max()  # a point at a right end stays with what ends there
+    owner = np.clip(np.searchsorted(breaks, places - rounding, side="left") - 1, 0, len(modes) - 1)
     values = np.empty((len(places), modes[0].shape[1]))
     for k in np.unique(owner):
         inside = owner == k
