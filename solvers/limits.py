@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from solvers.formula.evaluate import REAL, evaluate
 from solvers.formula.nodes import Node
-from solvers.problem import Condition
+from solvers.problem import Condition, Held
 
 if TYPE_CHECKING:
     from solvers.functions import Compiled
@@ -62,9 +62,7 @@ def limits(compiled: Compiled, where: Layout, rows: Rows) -> tuple[Array, Array,
         lower[indices], upper[indices] = state_lower, state_upper
     lower[where.controls], upper[where.controls] = control_lower, control_upper
     for held in problem.held:
-        k = compiled.lowered.controls.index((held.name, held.order))
-        inside = where.controls[where.stretch == held.stretch, k]
-        lower[inside] = upper[inside] = control_lower[k] if held.side < 0 else control_upper[k]
+        _hold(held, compiled, where, lower, upper)
     for parameter, index in zip(problem.parameters, where.parameters, strict=True):
         lower[index], upper[index] = parameter.lower, parameter.upper
     for place, index in zip(problem.places, where.places, strict=True):
@@ -84,3 +82,26 @@ def limits(compiled: Compiled, where: Layout, rows: Rows) -> tuple[Array, Array,
     conditions = np.array([interval_of(c, constants) for c in compiled.conditions]).reshape(-1, 2)
     row_lower[rows.conditions :], row_upper[rows.conditions :] = conditions[:, 0], conditions[:, 1]
     return lower, upper, row_lower, row_upper
+
+
+def _hold(held: Held, compiled: Compiled, where: Layout, lower: Array, upper: Array) -> None:
+    """Fix what is held on its limit along a stretch.
+
+    A state that stays on a constant limit has derivatives zero: they are fixed where the stretch begins, and from
+    there on follow from the dynamics.
+    """
+    lowered = compiled.lowered
+    quantity = (held.name, held.order)
+    side = lower if held.side < 0 else upper
+    if quantity in lowered.controls:
+        inside = where.controls[where.stretch == held.stretch, lowered.controls.index(quantity)]
+        lower[inside] = upper[inside] = side[inside]
+        return
+    start, end = where.at_place[held.stretch], where.at_place[held.stretch + 1]
+    k = lowered.states.index(quantity)
+    inside = np.concatenate([where.nodes[start : end + 1, k], where.inner[where.stretch == held.stretch, k]])
+    lower[inside] = upper[inside] = side[inside]
+    for index, (name, order) in enumerate(lowered.states):
+        if name == held.name and order > held.order:
+            at = where.nodes[start, index]
+            lower[at] = upper[at] = 0.0

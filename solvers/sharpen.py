@@ -8,7 +8,7 @@ from solvers.mesh import Interval, Mesh, interval
 from solvers.problem import Problem
 from solvers.pursuit import End, Pursuit, pursue
 from solvers.solution import Watch
-from solvers.structure import present_switches, softened, switches, with_switches
+from solvers.structure import present_switches, signals, softened, switches, with_switches
 from solvers.trajectory import Trajectory
 
 SOFTNESS = (1e-3, 1e-5)
@@ -20,16 +20,20 @@ AGREEMENT = 1e-2
 
 def sharpen(base: Pursuit, watch: Watch | None, deadline: float) -> Pursuit | None:
     """A pursuit of the same problem with its switches as unknowns; None where there are none or that leads nowhere."""
-    chosen = linear_controls(base.compiled)
-    if not chosen:
-        return None
     path = base.paths[-1]
+    if not signals(path):
+        return None
+    linear = linear_controls(base.compiled)
     best: Pursuit | None = None
-    for softness in SOFTNESS:
-        calm = pursue(softened(path, chosen, softness), watch, deadline, meshes=3, start=path, mesh=path.program.mesh)
-        if not calm.solved:
-            continue
-        found = _rounds(base.problem, calm.paths[-1], chosen, watch, deadline)
+    for softness in SOFTNESS if linear else (0.0,):
+        seen = path
+        if softness:
+            soft = softened(path, linear, softness)
+            calm = pursue(soft, watch, deadline, meshes=3, start=path, mesh=path.program.mesh)
+            if not calm.solved:
+                continue
+            seen = calm.paths[-1]
+        found = _rounds(base.problem, seen, watch, deadline)
         if found is None or not _agrees(found, base):
             continue
         if found.end is End.CONVERGED:
@@ -39,14 +43,12 @@ def sharpen(base: Pursuit, watch: Watch | None, deadline: float) -> Pursuit | No
     return best
 
 
-def _rounds(
-    problem: Problem, path: Trajectory, chosen: list[int], watch: Watch | None, deadline: float
-) -> Pursuit | None:
+def _rounds(problem: Problem, path: Trajectory, watch: Watch | None, deadline: float) -> Pursuit | None:
     """Read switches off a path, solve with them, and look again until nothing new is found."""
     best: Pursuit | None = None
     for _ in range(ROUNDS):
-        found = sorted([*(switches(path, chosen) or []), *present_switches(path)], key=lambda switch: switch.place)
-        changed = with_switches(problem, found, path, chosen)
+        found = sorted([*switches(path), *present_switches(path)], key=lambda switch: switch.place)
+        changed = with_switches(problem, found, path)
         if changed is None:
             return best
         pursuit = pursue(changed, watch, deadline, meshes=6, start=path, mesh=_mesh(changed))

@@ -40,7 +40,7 @@ def solve(problem: Problem, watch: Watch | None = None) -> Solution:
         gauged = in_parametric_form(problem, _sizes(problem), squared)
         if gauged is None or (squared and not gauged.squared):
             continue
-        pursuit = pursue(gauged.problem, watch, deadline)
+        pursuit = _in_given_form(gauged.problem, watch, deadline)
         if pursuit.solved or pursuit.end in (End.STOPPED, End.TIME):
             return _solution(problem, pursuit, gauged, began)
     return _solution(problem, _in_given_form(problem, watch, deadline), None, began)

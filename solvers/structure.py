@@ -15,10 +15,12 @@ from numpy.typing import NDArray
 
 from solvers.formula.nodes import Name, Node, Number, Power, Product, Sum
 from solvers.limits import quantity_bounds
+from solvers.lowering import Quantity
 from solvers.problem import Held, Parameter, Place, Problem
 from solvers.trajectory import Trajectory
 
 Array = NDArray[np.float64]
+Indices = NDArray[np.int64]
 
 MOST_SWITCHES = 16
 ON_LIMIT = 1e-3
@@ -34,67 +36,97 @@ class Switch:
     high: float
 
 
-def switches(path: Trajectory, chosen: list[int]) -> list[Switch] | None:
-    """The switches of the chosen controls on a solved mesh, in order; None where there are none, or too many."""
-    _, _, lower, upper = quantity_bounds(path.program.compiled)
-    found: list[Switch] = []
-    for index in chosen:
-        values = path.controls[:, index]
-        labels = _labels(values, float(lower[index]), float(upper[index]))
-        if len(set(labels.tolist())) > 1:
-            found += _changes(path, values, labels, float(lower[index]), float(upper[index]))
+@dataclass(frozen=True, slots=True)
+class Signal:
+    """A control or state with limits, by its values at the points; it switches where it comes to a limit or leaves it."""
+
+    quantity: Quantity
+    values: Array
+    lower: float
+    upper: float
+    state: bool
+
+    @property
+    def labels(self) -> Indices:
+        """-1 on the lower limit, 1 on the upper one, 0 between them, at every point."""
+        room = self.upper - self.lower
+        if not np.isfinite(room):
+            room = max(float(np.ptp(self.values)), 1e-300)
+        labels = np.zeros(len(self.values), dtype=np.int64)
+        labels[self.values - self.lower < ON_LIMIT * room] = -1
+        labels[self.upper - self.values < ON_LIMIT * room] = 1
+        return labels
+
+
+def signals(path: Trajectory) -> list[Signal]:
+    """All controls and states of a path that have limits and lie on one of them somewhere."""
+    lowered = path.program.compiled.lowered
+    state_lower, state_upper, control_lower, control_upper = quantity_bounds(path.program.compiled)
+    found = []
+    for quantities, table, lowers, uppers, state in (
+        (lowered.controls, path.controls, control_lower, control_upper, False),
+        (lowered.states, path.states, state_lower, state_upper, True),
+    ):
+        for index, quantity in enumerate(quantities):
+            signal = Signal(quantity, table[:, index], float(lowers[index]), float(uppers[index]), state)
+            if signal.labels.any():
+                found.append(signal)
+    return found
+
+
+def switches(path: Trajectory) -> list[Switch]:
+    """The switches of a solved mesh, in order; none where there are too many to be a structure."""
+    found = [switch for signal in signals(path) for switch in _changes(path, signal)]
     merged = _merged(sorted(found, key=lambda switch: switch.place), path)
-    return merged if 0 < len(merged) <= MOST_SWITCHES else None
+    return merged if len(merged) <= MOST_SWITCHES else []
 
 
-def _labels(values: Array, lower: float, upper: float) -> Array:
-    """-1 on the lower limit, 1 on the upper one, 0 between them."""
-    room = upper - lower if np.isfinite(upper - lower) else max(float(np.ptp(values)), 1e-300)
-    labels = np.zeros(len(values), dtype=int)
-    labels[values - lower < ON_LIMIT * room] = -1
-    labels[upper - values < ON_LIMIT * room] = 1
-    return labels
+def _changes(path: Trajectory, signal: Signal) -> list[Switch]:
+    """Places where the label of a signal changes.
 
-
-def _changes(path: Trajectory, values: Array, labels: Array, lower: float, upper: float) -> list[Switch]:
-    """Places where the label changes; a short passage between two limits is one switch."""
-    points, places = path.points, path.places
-    where = path.program.layout
+    A short passage of a control between two limits is one switch.  A state that only touches its limit has none.
+    """
+    labels, points, where = signal.labels, path.points, path.program.layout
     owner = np.repeat(np.arange(len(where.first) - 1), np.diff(where.first))
-    runs: list[list[int]] = []  # first and last point of each run of equal labels
-    for k, label in enumerate(labels):
-        if runs and labels[runs[-1][0]] == label:
-            runs[-1][1] = k
-        else:
-            runs.append([k, k])
-    kept: list[list[int]] = []
-    for run in runs:
-        first, last = run
-        passing = labels[first] == 0 and owner[last] - owner[first] <= 1 and first > 0 and last < len(labels) - 1
-        if passing and labels[first - 1] != labels[last + 1]:
+    kept = []
+    for first, last in _runs(labels):
+        inner = first > 0 and last < len(labels) - 1
+        short = owner[last] - owner[first] <= 1
+        if inner and short and labels[first] == 0 and labels[first - 1] != labels[last + 1]:
             continue
-        kept.append(run)
+        if signal.state and short and labels[first] != 0:
+            continue
+        kept.append((first, last))
     found = []
     for before, after in pairwise(kept):
         left, right = before[1], after[0]
-        if labels[before[0]] == labels[after[0]]:
+        if labels[left] == labels[right]:
             continue
         low, high = float(points[left]), float(points[right])
         place = (low + high) / 2
-        if labels[left] * labels[right] == -1:  # from one limit to the other: where a clean jump has the same integral
-            start, end = owner[left], owner[right]
-            inside = slice(where.first[start], where.first[end + 1])
-            a, b = path.breaks[start], path.breaks[end + 1]
-            stretch = (
-                np.ptp(places) if len(places) < 2 else places[where.stretch[left] + 1] - places[where.stretch[left]]
-            )
-            total = float(where.measures[inside] * stretch @ values[inside])
-            first_value, second_value = (lower, upper) if labels[left] < 0 else (upper, lower)
-            place = float((total - second_value * b + first_value * a) / (first_value - second_value))
-            low, high = min(low, a), max(high, b)
-            place = min(max(place, low), high)
+        if labels[left] * labels[right] == -1:
+            start, end = int(owner[left]), int(owner[right])
+            low, high = float(path.breaks[start]), float(path.breaks[end + 1])
+            place = _clean_jump(path, signal, slice(where.first[start], where.first[end + 1]), low, high, labels[left])
         found.append(Switch(place, low, high))
     return found
+
+
+def _runs(labels: Indices) -> list[tuple[int, int]]:
+    """First and last index of every run of equal labels."""
+    starts = np.concatenate([[0], np.flatnonzero(np.diff(labels)) + 1])
+    ends = np.concatenate([starts[1:] - 1, [len(labels) - 1]])
+    return [(int(first), int(last)) for first, last in zip(starts, ends, strict=True)]
+
+
+def _clean_jump(path: Trajectory, signal: Signal, inside: slice, low: float, high: float, side: int) -> float:
+    """Where a clean jump from one limit to the other has the same integral between `low` and `high`."""
+    where = path.program.layout
+    stretch = where.stretch[inside]
+    lengths = path.places[stretch + 1] - path.places[stretch]
+    total = float((where.measures[inside] * lengths) @ signal.values[inside])
+    first, second = (signal.lower, signal.upper) if side < 0 else (signal.upper, signal.lower)
+    return float(np.clip((total - second * high + first * low) / (first - second), low, high))
 
 
 def _merged(found: list[Switch], path: Trajectory) -> list[Switch]:
@@ -116,7 +148,7 @@ def _merged(found: list[Switch], path: Trajectory) -> list[Switch]:
     ]
 
 
-def with_switches(problem: Problem, found: list[Switch], path: Trajectory, chosen: list[int]) -> Problem | None:
+def with_switches(problem: Problem, found: list[Switch], path: Trajectory) -> Problem | None:
     """The problem with its switches as free places, each between its neighbours, and with its bang arcs held.
 
     A switch on both sides of which the same controls are held on the same limits is none; None where none is left.
@@ -126,14 +158,13 @@ def with_switches(problem: Problem, found: list[Switch], path: Trajectory, chose
     while True:
         spots: list[tuple[float, Place | None]] = [*own, *((switch.place, None) for switch in kept)]
         spots.sort(key=lambda spot: spot[0])
-        held = _held(path, np.array([place for place, _ in spots]), chosen)
-        needless = [
-            index for index, (_, place) in enumerate(spots)
-            if place is None and _on(held, index - 1) == _on(held, index)
-        ]  # fmt: skip
-        if not needless:
+        held = _held(path, np.array([place for place, _ in spots]))
+        simpler = _without_contradiction(kept, spots, held)
+        if simpler is None:
+            simpler = _without_needless(kept, spots, held)
+        if simpler is None:
             break
-        kept = [switch for switch in kept if switch.place != spots[needless[0]][0]]
+        kept = simpler
     if not kept:
         return None
     places: list[Place] = []
@@ -146,6 +177,37 @@ def with_switches(problem: Problem, found: list[Switch], path: Trajectory, chose
             place = Place(Name(name), name)
         places.append(place)
     return replace(problem, places=tuple(places), parameters=(*problem.parameters, *parameters), held=held)
+
+
+def _without_contradiction(
+    kept: list[Switch], spots: list[tuple[float, Place | None]], held: tuple[Held, ...]
+) -> list[Switch] | None:
+    """Fewer switches where a stretch holds an unknown and a derivative of it, whose ends are one switch seen twice."""
+    for stretch in range(len(spots) - 1):
+        orders: dict[str, int] = {}
+        for h in held:
+            if h.stretch == stretch:
+                orders[h.name] = orders.get(h.name, 0) + 1
+        if max(orders.values(), default=0) < 2:
+            continue
+        ends = [spots[stretch], spots[stretch + 1]]
+        inner = [at for at, place in ends if place is None]
+        rest = [switch for switch in kept if switch.place not in inner]
+        if len(inner) == 2:
+            middle = (inner[0] + inner[1]) / 2
+            rest = sorted([*rest, Switch(middle, *inner)], key=lambda switch: switch.place)
+        return rest
+    return None
+
+
+def _without_needless(
+    kept: list[Switch], spots: list[tuple[float, Place | None]], held: tuple[Held, ...]
+) -> list[Switch] | None:
+    """Fewer switches where one has the same on both sides."""
+    for index, (at, place) in enumerate(spots):
+        if place is None and _on(held, index - 1) == _on(held, index):
+            return [switch for switch in kept if switch.place != at]
+    return None
 
 
 SWITCH = "switch"
@@ -169,19 +231,17 @@ def _on(held: tuple[Held, ...], stretch: int) -> set[tuple[str, int, int]]:
     return {(h.name, h.order, h.side) for h in held if h.stretch == stretch}
 
 
-def _held(path: Trajectory, places: Array, chosen: list[int]) -> tuple[Held, ...]:
-    """Which linear controls stay on a limit along which stretch."""
-    compiled = path.program.compiled
-    _, _, lower, upper = quantity_bounds(compiled)
+def _held(path: Trajectory, places: Array) -> tuple[Held, ...]:
+    """What stays on a limit along which stretch."""
     found = []
-    for index in chosen:
-        labels = _labels(path.controls[:, index], float(lower[index]), float(upper[index]))
+    for signal in signals(path):
+        labels = signal.labels
         for stretch, (start, end) in enumerate(pairwise(places)):
             margin = 0.15 * (end - start)
             inside = labels[(path.points > start + margin) & (path.points < end - margin)]
             for side in (-1, 1):
                 if len(inside) and np.mean(inside == side) > 0.8:
-                    found.append(Held(stretch, *compiled.lowered.controls[index], side))
+                    found.append(Held(stretch, *signal.quantity, side))
     return tuple(found)
 
 
