@@ -228,23 +228,22 @@ def _moved(tree: Node, problem: Problem) -> Node:
     return with_children(tree, tuple(_moved(part, problem) for part in children(tree)))
 
 
-def _straight(problem: Problem) -> Node | None:
-    """x as a straight line, where both ends are given."""
+def _straight(problem: Problem) -> Node:
+    """x as a straight line; a free end is at the guess of its parameter."""
     start, end = (place.tree for place in problem.places)
-    if any(isinstance(tree, Name) and tree.name in {p.name for p in problem.parameters} for tree in (start, end)):
-        return None
     step = Product((Name(PARAMETER), Sum((end, start), (False, True))), (False, False))
     return Sum((start, step), (False, False))
 
 
 def _along(unknown: Unknown, problem: Problem) -> Node | tuple[tuple[float, float], ...] | None:
     """The user's guess in terms of s."""
-    guess, line = unknown.guess, _straight(problem)
-    if guess is None or line is None:
+    guess = unknown.guess
+    if guess is None:
         return None
     if isinstance(guess, tuple):
         first, last = guess[0][0], guess[-1][0]  # points are meant to reach from end to end
         return tuple(((at - first) / (last - first), value) for at, value in guess)
+    line = _straight(problem)
 
     def replaced(tree: Node) -> Node:
         if isinstance(tree, Name) and tree.name == problem.independent:
