@@ -49,9 +49,12 @@ class Estimate:
 def estimate(path: Trajectory) -> Estimate:
     """Local errors of a solved mesh.
 
-    Controls in which all is linear are left out: along a singular arc they are determined only through the states.
+    Controls in which all is linear are left out, as along a singular arc they are determined only through the states;
+    but where they are kept calm, what they are allowed must be enough for them.
     """
+    lowered = path.program.compiled.lowered
     loose = linear_controls(path.program.compiled)
+    calm = {(c.stretch, lowered.controls.index((c.name, c.order))) for c in lowered.problem.calm}
     mesh = path.program.mesh
     span = path.breaks[-1] - path.breaks[0]
     widths = np.diff(path.breaks)
@@ -60,11 +63,16 @@ def estimate(path: Trajectory) -> Estimate:
     errors, falls, bends = (np.zeros(len(mesh.intervals)) for _ in range(3))
     for k, (states, controls) in enumerate(zip(path.state_modes(), path.control_modes(), strict=True)):
         weight = min(1.0, widths[k] / span)
-        columns = np.vstack([states / state_sizes, np.zeros((0, states.shape[1]))])
+        columns = states / state_sizes
         error, worst = _tail(columns)
         falls[k], bends[k] = _shape(columns[:, worst]) if columns.shape[1] else (np.inf, 0.5)
         scaled = controls / control_sizes * weight
-        scaled[:, loose] = 0.0
+        kept = [index for index in loose if (mesh.intervals[k].stretch, index) in calm]
+        scaled[:, [index for index in loose if index not in kept]] = 0.0
+        if kept:
+            calm_error, _ = _tail(scaled[: (len(scaled) + 1) // 2, kept])
+            error = max(error, calm_error)
+            scaled[:, kept] = 0.0
         control_error, control_worst = _tail(scaled)
         if control_error > error:
             error = control_error

@@ -2,18 +2,21 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
+
 from solvers.collocation import Family
 from solvers.functions import linear_controls
 from solvers.mesh import Interval, Mesh, interval
 from solvers.problem import Problem
 from solvers.pursuit import End, Pursuit, pursue
 from solvers.solution import Watch
-from solvers.structure import present_switches, signals, softened, switches, with_switches
+from solvers.structure import SWITCH, held_rightly, present_switches, signals, softened, switches, with_switches
 from solvers.trajectory import Trajectory
 
 SOFTNESS = (1e-3, 1e-5)
 """Weights of the softened problems that are tried in turn."""
-ROUNDS = 4
+ROUNDS = 3
+"""How often the structure is read again off a sharpened path."""
 AGREEMENT = 1e-2
 """How far the value may move when the structure is made exact, relative to its size."""
 
@@ -23,42 +26,65 @@ def sharpen(base: Pursuit, watch: Watch | None, deadline: float) -> Pursuit | No
     path = base.paths[-1]
     if not signals(path):
         return None
+    found = []
+    for seen in _calmed(base, watch, deadline):
+        sharp = _with_structure(base, seen, watch, deadline)
+        if sharp is not None and sharp.end is End.CONVERGED:
+            return sharp
+        if sharp is not None:
+            found.append(sharp)
+    for sharp in sorted(found, key=lambda pursuit: pursuit.value_error)[:1]:
+        for _ in range(ROUNDS):
+            again = _with_structure(base, sharp.paths[-1], watch, deadline)
+            if again is None or again.value_error > sharp.value_error:
+                break
+            sharp = again
+            if sharp.end is End.CONVERGED:
+                break
+        return sharp
+    return None
+
+
+def _calmed(base: Pursuit, watch: Watch | None, deadline: float) -> Iterator[Trajectory]:
+    """Paths to read the structure off: softened ones where controls act linearly, else the plain one."""
+    path = base.paths[-1]
     linear = linear_controls(base.compiled)
-    best: Pursuit | None = None
-    for softness in SOFTNESS if linear else (0.0,):
-        seen = path
-        if softness:
-            soft = softened(path, linear, softness)
-            calm = pursue(soft, watch, deadline, meshes=3, start=path, mesh=path.program.mesh)
-            if not calm.solved:
-                continue
-            seen = calm.paths[-1]
-        found = _rounds(base.problem, seen, watch, deadline)
-        if found is None or not _agrees(found, base):
-            continue
-        if found.end is End.CONVERGED:
-            return found
-        if best is None or found.value_error < best.value_error:
-            best = found
-    return best
+    if not linear:
+        yield path
+    for softness in SOFTNESS if linear else ():
+        soft = softened(path, linear, softness)
+        calm = pursue(soft, watch, deadline, meshes=3, start=path, mesh=path.program.mesh)
+        if calm.solved:
+            yield calm.paths[-1]
 
 
-def _rounds(problem: Problem, path: Trajectory, watch: Watch | None, deadline: float) -> Pursuit | None:
-    """Read switches off a path, solve with them, and look again until nothing new is found."""
-    best: Pursuit | None = None
+def _with_structure(base: Pursuit, path: Trajectory, watch: Watch | None, deadline: float) -> Pursuit | None:
+    """Read switches off a path and solve with them; None where there are none or the answer is not believable.
+
+    A switch that ends at the edge of the room it was given is looked at again from there.
+    """
+    linear = [base.compiled.lowered.controls[index] for index in linear_controls(base.compiled)]
     for _ in range(ROUNDS):
         found = sorted([*switches(path), *present_switches(path)], key=lambda switch: switch.place)
-        changed = with_switches(problem, found, path)
+        changed = with_switches(base.problem, found, path, linear)
         if changed is None:
-            return best
+            return None
         pursuit = pursue(changed, watch, deadline, meshes=6, start=path, mesh=_mesh(changed))
         if not pursuit.solved:
-            return best
-        best = pursuit
+            return None
         path = pursuit.paths[-1]
-        if pursuit.end in (End.CONVERGED, End.TIME, End.STOPPED):
-            return best
-    return best
+        if not _at_the_edge(path):
+            return pursuit if _agrees(pursuit, base) and held_rightly(path) else None
+    return None
+
+
+def _at_the_edge(path: Trajectory) -> bool:
+    """Whether any switch has run into a neighbour's room."""
+    return any(
+        parameter.name.startswith(SWITCH + " ")
+        and min(value - parameter.lower, parameter.upper - value) < 1e-4 * (parameter.upper - parameter.lower)
+        for parameter, value in zip(path.program.compiled.lowered.problem.parameters, path.parameters, strict=True)
+    )
 
 
 def _mesh(problem: Problem) -> Mesh:

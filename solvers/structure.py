@@ -10,13 +10,14 @@ from __future__ import annotations
 from dataclasses import dataclass, replace
 from itertools import pairwise
 
+import casadi as ca
 import numpy as np
 from numpy.typing import NDArray
 
 from solvers.formula.nodes import Name, Node, Number, Power, Product, Sum
 from solvers.limits import quantity_bounds
 from solvers.lowering import Quantity
-from solvers.problem import Held, Parameter, Place, Problem
+from solvers.problem import Calm, Held, Parameter, Place, Problem
 from solvers.trajectory import Trajectory
 
 Array = NDArray[np.float64]
@@ -38,7 +39,7 @@ class Switch:
 
 @dataclass(frozen=True, slots=True)
 class Signal:
-    """A control or state with limits, by its values at the points; it switches where it comes to a limit or leaves it."""
+    """A control or state with limits, by its values at the points; it switches where it meets or leaves a limit."""
 
     quantity: Quantity
     values: Array
@@ -148,8 +149,10 @@ def _merged(found: list[Switch], path: Trajectory) -> list[Switch]:
     ]
 
 
-def with_switches(problem: Problem, found: list[Switch], path: Trajectory) -> Problem | None:
+def with_switches(problem: Problem, found: list[Switch], path: Trajectory, linear: list[Quantity]) -> Problem | None:
     """The problem with its switches as free places, each between its neighbours, and with its bang arcs held.
+
+    `linear` are the controls that act linearly; they are calm where they are free.
 
     A switch on both sides of which the same controls are held on the same limits is none; None where none is left.
     """
@@ -176,7 +179,9 @@ def with_switches(problem: Problem, found: list[Switch], path: Trajectory) -> Pr
             parameters.append(Parameter(name, at - 0.45 * (at - low), at + 0.45 * (high - at), at))
             place = Place(Name(name), name)
         places.append(place)
-    return replace(problem, places=tuple(places), parameters=(*problem.parameters, *parameters), held=held)
+    calm = _calm(linear, len(places) - 1, held)
+    parameters = [*problem.parameters, *parameters]
+    return replace(problem, places=tuple(places), parameters=tuple(parameters), held=held, calm=calm)
 
 
 def _without_contradiction(
@@ -232,17 +237,27 @@ def _on(held: tuple[Held, ...], stretch: int) -> set[tuple[str, int, int]]:
 
 
 def _held(path: Trajectory, places: Array) -> tuple[Held, ...]:
-    """What stays on a limit along which stretch."""
-    found = []
-    for signal in signals(path):
-        labels = signal.labels
-        for stretch, (start, end) in enumerate(pairwise(places)):
-            margin = 0.15 * (end - start)
-            inside = labels[(path.points > start + margin) & (path.points < end - margin)]
-            for side in (-1, 1):
-                if len(inside) and np.mean(inside == side) > 0.8:
-                    found.append(Held(stretch, *signal.quantity, side))
+    """What stays on a limit along which stretch; never more than there are controls, controls before states."""
+    room = len(path.program.compiled.lowered.controls)
+    found: list[Held] = []
+    for stretch, (start, end) in enumerate(pairwise(places)):
+        margin = 0.15 * (end - start)
+        inside = (path.points > start + margin) & (path.points < end - margin)
+        here = [
+            Held(stretch, *signal.quantity, side)
+            for signal in signals(path)
+            for side in (-1, 1)
+            if inside.any() and np.mean(signal.labels[inside] == side) > 0.8
+        ]
+        found += here[:room] if len({held.name for held in here}) > 1 else here
     return tuple(found)
+
+
+def _calm(linear: list[Quantity], stretches: int, held: tuple[Held, ...]) -> tuple[Calm, ...]:
+    """The linear controls along the stretches where nothing is held: they run singular there."""
+    return tuple(
+        Calm(stretch, *quantity) for quantity in linear for stretch in range(stretches) if not _on(held, stretch)
+    )
 
 
 def softened(path: Trajectory, chosen: list[int], softness: float) -> Problem:
@@ -260,3 +275,44 @@ def softened(path: Trajectory, chosen: list[int], softness: float) -> Problem:
         terms.append(Product((weight, Power(Name(name, order), Number(2.0, "2"))), (False, False)))
     integrand = terms[0] if len(terms) == 1 else Sum(tuple(terms), (False,) * len(terms))
     return replace(problem, integrand=integrand)
+
+
+WRONG = 0.2
+"""How far, relative to the largest on its arc, the slope of the value may point away from the limit that is held."""
+
+
+def held_rightly(path: Trajectory) -> bool:
+    """Whether leaving any held limit would make the value worse: the slope of the Lagrangian has the right sign.
+
+    For a control at every point of its arc, but for what discretisation blurs near its ends; for a state, whose multiplier
+    may be spread in many ways, in the sum.
+    """
+    program = path.program
+    where, problem = program.layout, program.compiled.lowered.problem
+    slopes = lagrangian_slopes(path)
+    lowered = program.compiled.lowered
+    resting = [signal for signal in signals(path) if signal.state]
+    for held in problem.held:
+        quantity = (held.name, held.order)
+        inside = where.stretch == held.stretch
+        if any(signal.quantity != quantity and signal.labels[inside].all() for signal in resting):
+            continue  # a state rests on its limit besides: the multipliers are not unique
+        if quantity in lowered.controls:
+            outward = -held.side * slopes[where.controls[inside, lowered.controls.index(quantity)]]
+            outward = outward / where.measures[inside]
+            if outward.min(initial=0.0) < -WRONG * np.abs(outward).max(initial=0.0):
+                return False
+        elif -held.side * slopes[where.inner[inside, lowered.states.index(quantity)]].sum() < 0:
+            return False
+    return True
+
+
+def lagrangian_slopes(path: Trajectory) -> Array:
+    """The slope of the Lagrangian (scaled) in every variable, the multipliers of bounds left out."""
+    program = path.program
+    z = path.z / program.scale
+    constants = list(program.compiled.constants)
+    slope = np.asarray(program.functions["grad_f"](z, constants)[1]).ravel()
+    multipliers = path.row_multipliers * program.row_scale / abs(program.value_scale)
+    jacobian = program.functions["jac_g"](z, constants)[1]
+    return np.asarray(slope + np.asarray(ca.mtimes(jacobian.T, ca.DM(multipliers))).ravel())
