@@ -3,8 +3,8 @@
 On every interval p' = -H_x is integrated along the stored curve from the right end to the left (on the last interval,
 if its right end is fixed, from the left, since a costate may be infinite there).  What is found inside the interval
 obeys the costate equation whatever the solver did; what it lacks at the other end is the jump that a check must weigh.
-Where a constraint on states alone is touched, its multiplier is a measure: there the stored polynomials are kept, and
-the weak form of the equation takes the place of the jump.
+Where a constraint on states alone is touched, its multiplier is a measure: there, if the costate lacks its push, the
+stored polynomials are kept, and the weak form of the equation takes the place of the jump.
 
 The equation is linear; three-stage Gauss steps (order six) solve it on all intervals side by side.
 Reference: Hairer, Wanner (1996), Solving Ordinary Differential Equations II, section IV.5 (from memory).
@@ -24,6 +24,8 @@ if TYPE_CHECKING:
 Array = NDArray[np.float64]
 Flags = NDArray[np.bool_]
 
+LACKING = 1e-5
+"""A jump, relative to the functional, that needs the push of a limit as its reason."""
 TOUCHED = 1e-5
 """Multipliers of limits on states alone, relative to the functional, that make an interval a touched one."""
 
@@ -112,7 +114,7 @@ def continued(sampler: Sampler, places: Array) -> Continued:
     from_left = count > 1 and bool(joined[-2]) and any(fixed for _, fixed in sampler.fixed_ends)
     if from_left:
         start[-2] = right[-2]  # the last interval's own polynomial is of no use at its left end
-    far, kept = every.copy(), touched(sampler)
+    far = every.copy()
     steps = steps_through(places)
     sample = sampler.grid(steps.stages)
     slopes = sampler.slopes(sample)
@@ -128,7 +130,12 @@ def continued(sampler: Sampler, places: Array) -> Continued:
                                  backwards=False)  # fmt: skip
         jumps[-1], far[-1] = values[-1, -1] - right[-1], count
     inside = values[:, steps.wanted]
-    kept |= ~np.isfinite(inside).all(axis=(1, 2))
+    shares = (sampler.path.breaks[far] - sampler.path.breaks[0]) / sampler.span
+    weights = np.column_stack([variation(shares, fixed)[0] for fixed in sampler.fixed_ends])
+    lacking = (
+        np.where(weights > 0, np.abs(jumps * weights), 0.0) @ sampler.state_sizes > LACKING * sampler.program_value
+    )
+    kept = (touched(sampler) & lacking) | ~np.isfinite(inside).all(axis=(1, 2))
     stored = sampler.of(sampler.costates, np.repeat(every, len(places)), np.tile(places, count))
     inside[kept] = stored.reshape(count, -1, n)[kept]
     return Continued(inside.reshape(-1, n), jumps, far, kept)

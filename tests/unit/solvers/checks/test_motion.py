@@ -40,7 +40,9 @@ IMPLICIT = {
 }
 
 
-@pytest.mark.parametrize("document", [REST_TO_REST, PENDULUM, STIFF, IMPLICIT], ids=["rest", "pendulum", "stiff", "implicit"])
+@pytest.mark.parametrize(
+    "document", [REST_TO_REST, PENDULUM, STIFF, IMPLICIT], ids=["rest", "pendulum", "stiff", "implicit"]
+)
 def test_a_solved_curve_passes(solved, examine, document):
     check = examine(motion.check, solved(document))
     assert check.status is Status.PASSED, check

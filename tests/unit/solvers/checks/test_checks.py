@@ -1,0 +1,62 @@
+"""All checks together: their order, their manners, and what becomes of one that breaks."""
+
+import time
+
+import pytest
+
+from solvers import checks
+from solvers.checks import stationarity
+from solvers.solution import Status
+
+LINE = {
+    "independent": {"name": "x", "from": 0, "to": 1},
+    "unknowns": {"y": {}},
+    "functional": {"seek": "minimum", "integrand": "sqrt(1 + y'^2)"},
+    "endpoints": ["y(0) = 0", "y(1) = 1"],
+}
+
+
+def test_all_are_made_in_order(solved):
+    made = checks.run(solved(LINE), value_error=1e-9, curve_error=1e-9)
+    assert tuple(check.name for check in made) == checks.NAMES
+    assert all(check.status is not Status.FAILED for check in made), made
+    assert all(check.sentence.endswith(".") for check in made)
+
+
+def test_a_check_that_breaks_has_failed_and_says_why(solved, monkeypatch):
+    def broken(sampler):
+        raise ZeroDivisionError("oh")
+
+    monkeypatch.setattr(stationarity, "check", broken)
+    found = {check.name: check for check in checks.run(solved(LINE))}
+    assert found["stationarity"].status is Status.FAILED
+    assert "ZeroDivisionError: oh" in found["stationarity"].sentence
+    assert found["motion"].status is Status.PASSED
+
+
+def test_past_the_deadline_none_passes(solved):
+    made = checks.run(solved(LINE), deadline=time.perf_counter() - 1)
+    assert {check.status for check in made} == {Status.FAILED}
+
+
+def test_an_undefined_curve_passes_nothing_that_looks_at_it(sketched):
+    """y = -x under a root: every figure that needs the integrand is undefined."""
+    document = {**LINE, "functional": {"seek": "minimum", "integrand": "sqrt(y) + y'^2"}}
+    path = sketched(document, [lambda x: -x], [lambda x: -1 + 0 * x])
+    found = {check.name: check.status for check in checks.run(path, value_error=0.0, curve_error=0.0)}
+    assert found["conditions"] is Status.FAILED
+    assert found["stationarity"] is Status.FAILED
+    assert found["Legendre"] is not Status.PASSED
+    assert found["conjugate points"] is not Status.PASSED
+
+
+def test_numbers_are_plain(solved):
+    """Results are sent and stored: no array scalars."""
+    for check in checks.run(solved(LINE), value_error=1e-9, curve_error=1e-9):
+        for value in (check.figure, check.threshold, check.place):
+            assert value is None or type(value) is float
+
+
+@pytest.mark.parametrize("name", checks.NAMES)
+def test_names_are_unique(name):
+    assert checks.NAMES.count(name) == 1

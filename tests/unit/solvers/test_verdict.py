@@ -1,0 +1,85 @@
+"""Verdicts: nothing is claimed that the checks do not show."""
+
+import itertools
+
+import pytest
+
+from solvers import checks
+from solvers.problem import Seek
+from solvers.solution import Check, Status, Verdict
+from solvers.verdict import End, failures, judge
+
+FIRST = ("motion", "limits", "conditions", "stationarity", "free ends", "first integral", "refinement")
+P, F, N = Status.PASSED, Status.FAILED, Status.NOT_APPLICABLE
+
+
+def found(**statuses):
+    names = {name: Check(name, P, "") for name in checks.NAMES}
+    names["convexity"] = Check("convexity", N, "")
+    for key, status in statuses.items():
+        name = {"Legendre": "Legendre"}.get(key, key.replace("_", " "))
+        assert name in names
+        names[name] = Check(name, status, "")
+    return tuple(names.values())
+
+
+@pytest.mark.parametrize(
+    ("seek", "statuses", "verdict"),
+    [
+        (Seek.MINIMUM, {}, Verdict.LOCAL_MINIMUM),
+        (Seek.MAXIMUM, {}, Verdict.LOCAL_MAXIMUM),
+        (Seek.STATIONARY, {}, Verdict.STATIONARY),
+        (Seek.MINIMUM, {"convexity": P}, Verdict.GLOBAL_MINIMUM),
+        (Seek.MAXIMUM, {"convexity": P}, Verdict.GLOBAL_MAXIMUM),
+        (Seek.STATIONARY, {"convexity": P}, Verdict.STATIONARY),
+        (Seek.MINIMUM, {"conjugate_points": N}, Verdict.STATIONARY),
+        (Seek.MINIMUM, {"conjugate_points": N, "convexity": P}, Verdict.GLOBAL_MINIMUM),
+        (Seek.MINIMUM, {"conjugate_points": F}, Verdict.NOT_A_MINIMUM),
+        (Seek.MAXIMUM, {"conjugate_points": F}, Verdict.NOT_A_MAXIMUM),
+        (Seek.MINIMUM, {"Legendre": F}, Verdict.NOT_A_MINIMUM),
+        (Seek.MINIMUM, {"Legendre": N}, Verdict.LOCAL_MINIMUM),
+        (Seek.STATIONARY, {"Legendre": F}, Verdict.STATIONARY),
+    ],
+)
+def test_verdict_of_checks(seek, statuses, verdict):
+    assert judge(seek, found(**statuses)) is verdict
+
+
+@pytest.mark.parametrize("name", FIRST)
+@pytest.mark.parametrize("seek", Seek)
+def test_without_feasibility_or_first_order_nothing_is_verified(name, seek):
+    statuses = {"convexity": P, name.replace(" ", "_"): F}
+    assert judge(seek, found(**statuses)) is Verdict.NOT_VERIFIED
+
+
+@pytest.mark.parametrize("name", FIRST)
+def test_a_check_that_is_missing_counts_as_failed(name):
+    rest = tuple(check for check in found(convexity=P) if check.name != name)
+    assert judge(Seek.MINIMUM, rest) is Verdict.NOT_VERIFIED
+
+
+def test_early_ends():
+    assert judge(Seek.MINIMUM, (), End.INFEASIBLE) is Verdict.INFEASIBLE
+    assert judge(Seek.MINIMUM, (), End.UNBOUNDED) is Verdict.NO_OPTIMUM
+    assert judge(Seek.MINIMUM, found(refinement=F, stationarity=F), End.LIMIT) is Verdict.BEST_FOUND
+    assert judge(Seek.MINIMUM, found(limits=F), End.LIMIT) is Verdict.NOT_VERIFIED
+
+
+def test_global_is_claimed_only_with_everything_of_first_order_and_convexity():
+    """All combinations of all statuses: the promise as it stands in the problem format."""
+    for statuses in itertools.product((P, F, N), repeat=len(checks.NAMES)):
+        by_name = dict(zip(checks.NAMES, statuses, strict=True))
+        verdict = judge(Seek.MINIMUM, tuple(Check(name, status, "") for name, status in by_name.items()))
+        if verdict in (Verdict.GLOBAL_MINIMUM, Verdict.LOCAL_MINIMUM):
+            assert all(by_name[name] is not F for name in checks.NAMES if name != "convexity")
+        if verdict is Verdict.GLOBAL_MINIMUM:
+            assert by_name["convexity"] is P
+        if verdict is Verdict.LOCAL_MINIMUM:
+            assert by_name["conjugate points"] is P
+        if verdict is Verdict.NOT_A_MINIMUM:
+            assert F in (by_name["Legendre"], by_name["conjugate points"])
+
+
+def test_failures_keep_their_order():
+    named = failures(found(refinement=F, motion=F))
+    assert [check.name for check in named] == ["motion", "refinement"]
