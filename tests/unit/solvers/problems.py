@@ -35,8 +35,15 @@ def stated(**members):
 
 
 def shape(**members):
-    """The shortest curve y(x) over 0 to 3 without conditions, with some members replaced."""
-    return stating.shape(**_sought(members))
+    """The shortest curve y(x) over 0 to 3 without units or conditions, some members replaced."""
+    given = {
+        "independent": {"name": "x", "from": 0, "to": 3},
+        "unknowns": {"y": {}},
+        "dynamics": None,
+        "functional": {"integrand": "sqrt(1 + y'^2)"},
+        "endpoints": [],
+    }
+    return stating.stated(**_sought(given | members))
 
 
 def _sought(members):
