@@ -82,7 +82,7 @@ def _limits(path: Trajectory, multipliers: Array) -> Iterator[Price]:
     program, compiled = path.program, path.program.compiled
     point, where, problem = compiled.point, program.layout, compiled.lowered.problem
     lines, worth = len(compiled.lowered.equalities), TRACE * abs(program.value_scale)
-    rows = path.row_multipliers[program.rows.pointwise : program.rows.integrals].reshape(-1, point.constraints or 1)
+    rows = path.row_multipliers[program.rows.pointwise : program.rows.rims].reshape(-1, point.constraints or 1)
     for k, condition in enumerate(compiled.pointwise[lines:], start=lines):
         if condition.equality:
             yield Price(condition.label, condition.pointer, float(rows[:, k].sum()))

@@ -175,7 +175,7 @@ def touched(sampler: Sampler) -> Flags:
     weights = np.column_stack([variation(shares, fixed)[0] for fixed in sampler.fixed_ends])
     pushes = (np.abs(path.bound_multipliers[where.inner]) * weights * sampler.state_sizes).sum(axis=1)
     if c:
-        multipliers = path.row_multipliers[path.program.rows.pointwise : path.program.rows.integrals].reshape(-1, c)
+        multipliers = path.row_multipliers[path.program.rows.pointwise : path.program.rows.rims].reshape(-1, c)
         alone = np.array([not sampler.holds_controls(n + k) for k in range(c)])
         pushes = pushes + np.abs(multipliers[:, alone]) @ sampler.output_sizes[n : n + c][alone]
     return np.asarray(np.bincount(owner, pushes, sampler.count) > TOUCHED * sampler.program_value)

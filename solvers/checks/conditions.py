@@ -20,6 +20,8 @@ Array = NDArray[np.float64]
 NAME = "conditions"
 CUTS = np.array([0.0, 0.1, 0.5, 0.9, 1.0])
 ROUNDS = 12
+MOST_PIECES = 500
+"""How many pieces may be cut further at once: more than the ends and kinks of any curve need."""
 
 _KRONROD = np.array([0.991455371120812639206854697526329, 0.949107912342758524526189684047851,
                      0.864864423359769072789712788640926, 0.741531185599394439863864773280788,
@@ -88,7 +90,8 @@ def integrate(sampler: Sampler, accuracy: float) -> tuple[Array, float]:
         if turn == 0:
             size = np.nansum(np.abs(fine), axis=0)
         good = np.all(np.abs(fine - coarse) <= accuracy * size / 10 + 1e-300, axis=1)
-        good |= turn == ROUNDS - 1
+        good |= ~np.isfinite(fine).all(axis=1)  # undefined stays undefined, however finely it is cut
+        good |= turn == ROUNDS - 1 or np.count_nonzero(~good) > max(MOST_PIECES, 2 * sampler.count)
         total += fine[good].sum(axis=0)
         interval, left, width = interval[~good], left[~good], width[~good]
         if not len(interval):

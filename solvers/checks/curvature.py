@@ -80,6 +80,8 @@ def check(sampler: Sampler) -> Check:
     if program.layout.size > LARGEST:
         return Check(NAME, Status.NOT_APPLICABLE, f"The mesh has more than {LARGEST} unknowns; this was not tried.")
     second = second_order(sampler)
+    if not np.isfinite(second.hessian.data).all():
+        return Check(NAME, Status.NOT_APPLICABLE, "The second variation is undefined somewhere along the curve.")
     strict = ~(second.fixed | second.pushed)
     rows = second.equalities | second.forced
     positive = count_negative(second, strict, rows, -MARGIN)
@@ -140,7 +142,7 @@ def second_order(sampler: Sampler) -> Second:
     at_limit = ~equalities & ((values - program.row_lower <= AT_BOUND) | (program.row_upper - values <= AT_BOUND))
     row_measure = np.ones(rows.count)
     if sampler.point.constraints:
-        row_measure[rows.pointwise : rows.integrals] = np.repeat(weight, sampler.point.constraints)
+        row_measure[rows.pointwise : rows.rims] = np.repeat(weight, sampler.point.constraints)
     forced = at_limit & (np.abs(multipliers) > PUSHED * share * row_measure)
     long = np.zeros(rows.count, bool)
     long[rows.integrals :] = True

@@ -145,7 +145,7 @@ def _measures(sampler: Sampler) -> tuple[Array, NDArray[np.int64], Array]:
         columns = np.array(sampler.point.jacobian_columns, dtype=int)
         chosen = np.flatnonzero((rows >= n) & (rows < n + c) & (columns < n))
         slopes = sampler.slopes(sample)
-        multipliers = path.row_multipliers[path.program.rows.pointwise : path.program.rows.integrals].reshape(-1, c)
+        multipliers = path.row_multipliers[path.program.rows.pointwise : path.program.rows.rims].reshape(-1, c)
         for entry in chosen:
             put[:, columns[entry]] += slopes[:, entry] * multipliers[:, rows[entry] - n]
     gauss = np.array([i.scheme.family is Family.GAUSS for i in path.program.mesh.intervals])
@@ -174,7 +174,7 @@ def _multipliers(sampler: Sampler) -> list[Finding]:
         owner = np.repeat(np.arange(sampler.count), degrees)
         sample = sampler.sample(owner, (where.fractions - sampler.fraction[owner]) / sampler.width[owner])
         values = mapped(sampler.point.value, sample.v, sample.d)[:, n + lines : n + c]
-        rows = path.row_multipliers[path.program.rows.pointwise : path.program.rows.integrals].reshape(-1, c)
+        rows = path.row_multipliers[path.program.rows.pointwise : path.program.rows.rims].reshape(-1, c)
         sizes = sampler.output_sizes[n + lines : n + c]
         constants = constants_of(sampler.compiled)
         for k, condition in enumerate(sampler.compiled.pointwise[lines:]):

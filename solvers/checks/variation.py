@@ -56,7 +56,6 @@ def _bends(sampler: Sampler) -> Array:
     bends = np.zeros((len(sample.local), point.inputs, point.inputs))
     for entry, (row, column) in enumerate(zip(point.hessian_rows, point.hessian_columns, strict=True)):
         bends[:, row, column] = bends[:, column, row] = numbers[:, entry]
-    bends[~np.isfinite(bends)] = 0.0
     return bends.reshape(sampler.count, len(HALVES), point.inputs, point.inputs)
 
 

@@ -112,7 +112,9 @@ def test_the_second_variation_is_the_programs_where_quadrature_is_exact(stationa
     rows = path.row_multipliers * program.row_scale / abs(program.value_scale)
     upper = program.functions["hess_lag"](path.z / program.scale, [], 1.0, rows).full()
     expected = np.triu(upper) + np.triu(upper, 1).T
-    inside = np.concatenate([program.layout.nodes[:1].ravel(), program.layout.inner.ravel(), program.layout.controls.ravel()])
+    inside = np.concatenate(
+        [program.layout.nodes[:1].ravel(), program.layout.inner.ravel(), program.layout.controls.ravel()]
+    )
     change = np.random.default_rng(5).normal(size=len(inside))
     ours, theirs = (change @ m[np.ix_(inside, inside)] @ change for m in (form.toarray(), expected))
     assert ours == pytest.approx(theirs, rel=1e-9)

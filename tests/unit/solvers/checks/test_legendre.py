@@ -15,7 +15,11 @@ LINE = {
 }
 DOWNWARDS = {**LINE, "functional": {"seek": "minimum", "integrand": "y^2 - y'^2"}}
 HALFWAY = {**LINE, "functional": {"seek": "minimum", "integrand": "(x - 1/2)*y'^2"}}
-WELLS = {**LINE, "functional": {"seek": "minimum", "integrand": "(y'^2 - 1)^2"}, "endpoints": ["y(0) = 0", "y(1) = 0.5"]}
+WELLS = {
+    **LINE,
+    "functional": {"seek": "minimum", "integrand": "(y'^2 - 1)^2"},
+    "endpoints": ["y(0) = 0", "y(1) = 0.5"],
+}
 SADDLE = {
     "independent": {"name": "t", "from": 0, "to": 1},
     "unknowns": {"x": {}, "u": {}, "w": {}},
