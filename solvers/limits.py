@@ -78,7 +78,7 @@ def limits(compiled: Compiled, where: Layout, rows: Rows) -> tuple[Array, Array,
     row_lower[rows.pointwise : rows.rims] = np.tile(pointwise[:, 0], count)
     row_upper[rows.pointwise : rows.rims] = np.tile(pointwise[:, 1], count)
     rims = np.array([interval_of(c, constants) for _, _, c in compiled.rims]).reshape(-1, 2)
-    row_lower[rows.rims : rows.integrals], row_upper[rows.rims : rows.integrals] = rims[:, 0], rims[:, 1]
+    row_lower[rows.rims : rows.rims + len(rims)], row_upper[rows.rims : rows.rims + len(rims)] = rims.T
     conditions = np.array([interval_of(c, constants) for c in compiled.conditions]).reshape(-1, 2)
     row_lower[rows.conditions :], row_upper[rows.conditions :] = conditions[:, 0], conditions[:, 1]
     return lower, upper, row_lower, row_upper

@@ -127,6 +127,18 @@ class Held:
 
 
 @dataclass(frozen=True, slots=True)
+class Calm:
+    """A control that is free but acts linearly along a stretch (a singular arc): half the degree of the mesh is enough.
+
+    With as many coefficients as points it could ring between them without the discrete problem noticing.
+    """
+
+    stretch: int
+    name: str
+    order: int
+
+
+@dataclass(frozen=True, slots=True)
 class Options:
     """How far to go.  `tolerance` is relative, for the curve and for the value; `points` limits the mesh."""
 
@@ -154,6 +166,7 @@ class Problem:
     constraints: tuple[Condition, ...] = ()  # pointwise: hold everywhere
     integrals: tuple[Condition, ...] = ()  # bodies hold `Call("integral", ...)`, may hold `At` and parameters too
     held: tuple[Held, ...] = ()  # found by the solver, never given by the user
+    calm: tuple[Calm, ...] = ()  # the same
     options: Options = field(default_factory=Options)
     independent_unit: Unit = PLAIN
     value_unit: Unit = PLAIN

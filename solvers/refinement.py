@@ -18,6 +18,7 @@ from numpy.typing import NDArray
 
 from solvers.collocation import Family
 from solvers.functions import linear_controls
+from solvers.limits import constants_of, interval_of, quantity_bounds
 from solvers.mesh import Interval, Mesh, interval
 from solvers.trajectory import Trajectory
 
@@ -80,7 +81,51 @@ def estimate(path: Trajectory) -> Estimate:
         elif scaled.shape[1]:
             bends[k] = _shape(scaled[:, control_worst])[1]
         errors[k] = error
+    _add_excess(path, errors)
     return Estimate(errors, falls, bends)
+
+
+BETWEEN = np.linspace(-1.0, 1.0, 15)
+"""Places, in the local variable, at which limits are looked at between the points."""
+
+
+def _add_excess(path: Trajectory, errors: Array) -> None:
+    """Count as an error how far states leave their bounds, and constraints their limits, between the points."""
+    compiled = path.program.compiled
+    lower, upper, _, _ = quantity_bounds(compiled)
+    bounded = np.isfinite(lower) | np.isfinite(upper)
+    limits = np.array([interval_of(c, constants_of(compiled)) for c in compiled.pointwise]).reshape(-1, 2)
+    unequal = limits[:, 0] < limits[:, 1]
+    if not bounded.any() and not unequal.any():
+        return
+    states = np.stack([legendre.legvander(BETWEEN, len(modes) - 1) @ modes for modes in path.state_modes()])
+    excess = np.maximum(lower - states, states - upper)[:, :, bounded] / _sizes(path.states)[bounded]
+    errors[:] = np.maximum(errors, excess.max(axis=(1, 2), initial=0.0))
+    if unequal.any():
+        bodies = _bodies_between(path, states)[:, :, unequal]
+        sizes = path.program.row_scale[path.program.rows.pointwise :][: len(limits)][unequal]
+        excess = np.maximum(limits[unequal, 0] - bodies, bodies - limits[unequal, 1]) / sizes
+        errors[:] = np.maximum(errors, np.nan_to_num(excess).max(axis=(1, 2), initial=0.0))
+
+
+def _bodies_between(path: Trajectory, states: Array) -> Array:
+    """Bodies of the pointwise constraints at `BETWEEN` in every interval (N x len(BETWEEN) x constraints)."""
+    mesh, compiled = path.program.mesh, path.program.compiled
+    lower, upper = quantity_bounds(compiled)[2:]
+    controls = np.stack([legendre.legvander(BETWEEN, len(modes) - 1) @ modes for modes in path.control_modes()])
+    shape = (*states.shape[:2], 1)
+    starts = np.array([path.places[i.stretch] for i in mesh.intervals])[:, None, None]
+    ends = np.array([path.places[i.stretch + 1] for i in mesh.intervals])[:, None, None]
+    fractions = np.array([i.start + i.width * (BETWEEN + 1) / 2 for i in mesh.intervals])[:, :, None]
+    parameters = np.broadcast_to(path.parameters, (*shape[:2], len(path.parameters)))
+    constants = np.broadcast_to(np.array(compiled.constants), (*shape[:2], len(compiled.constants)))
+    v = np.concatenate([states, np.clip(controls, lower, upper), np.broadcast_to(starts, shape),
+                        np.broadcast_to(ends, shape), parameters], axis=2)  # fmt: skip
+    d = np.concatenate([fractions, constants], axis=2)
+    count = shape[0] * shape[1]
+    outputs = np.asarray(compiled.point.value.map(count)(v.reshape(count, -1).T, d.reshape(count, -1).T)).T
+    first = compiled.point.states
+    return outputs[:, first : first + compiled.point.constraints].reshape(*shape[:2], -1)
 
 
 def _sizes(values: Array) -> Array:

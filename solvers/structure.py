@@ -10,7 +10,6 @@ from __future__ import annotations
 from dataclasses import dataclass, replace
 from itertools import pairwise
 
-import casadi as ca
 import numpy as np
 from numpy.typing import NDArray
 
@@ -284,12 +283,12 @@ WRONG = 0.2
 def held_rightly(path: Trajectory) -> bool:
     """Whether leaving any held limit would make the value worse: the slope of the Lagrangian has the right sign.
 
-    For a control at every point of its arc, but for what discretisation blurs near its ends; for a state, whose multiplier
-    may be spread in many ways, in the sum.
+    For a control at every point of its arc, but for what discretisation blurs near its ends; for a state, whose
+    multiplier may be spread in many ways, in the sum.
     """
     program = path.program
     where, problem = program.layout, program.compiled.lowered.problem
-    slopes = lagrangian_slopes(path)
+    slopes = -path.bound_multipliers * program.scale / abs(program.value_scale)
     lowered = program.compiled.lowered
     resting = [signal for signal in signals(path) if signal.state]
     for held in problem.held:
@@ -305,14 +304,3 @@ def held_rightly(path: Trajectory) -> bool:
         elif -held.side * slopes[where.inner[inside, lowered.states.index(quantity)]].sum() < 0:
             return False
     return True
-
-
-def lagrangian_slopes(path: Trajectory) -> Array:
-    """The slope of the Lagrangian (scaled) in every variable, the multipliers of bounds left out."""
-    program = path.program
-    z = path.z / program.scale
-    constants = list(program.compiled.constants)
-    slope = np.asarray(program.functions["grad_f"](z, constants)[1]).ravel()
-    multipliers = path.row_multipliers * program.row_scale / abs(program.value_scale)
-    jacobian = program.functions["jac_g"](z, constants)[1]
-    return np.asarray(slope + np.asarray(ca.mtimes(jacobian.T, ca.DM(multipliers))).ravel())

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
+import casadi as ca
 import numpy as np
 from numpy.typing import NDArray
 
@@ -86,6 +87,7 @@ def trajectory(program: Program, minimum: Minimum) -> Trajectory:
     point = program.compiled.point
     count = len(where.fractions)
     sign_and_size = abs(program.value_scale)
+    bounds = np.where(program.lower == program.upper, -_slopes(program, minimum), minimum.bound_multipliers)
     rows = minimum.multipliers / program.row_scale * sign_and_size  # multipliers of the rows in SI
     defects = rows[: count * point.states].reshape(count, point.states)
     weights = np.concatenate([i.scheme.weights for i in program.mesh.intervals])
@@ -103,9 +105,20 @@ def trajectory(program: Program, minimum: Minimum) -> Trajectory:
         controls=z[where.controls],
         costates=-defects / weights[:, None],
         multipliers=constraints / (where.measures * (ends - starts))[:, None],
-        bound_multipliers=minimum.bound_multipliers * sign_and_size / scale,
+        bound_multipliers=bounds * sign_and_size / scale,
         row_multipliers=rows,
     )
+
+
+def _slopes(program: Program, minimum: Minimum) -> Array:
+    """The slope of f + multipliers.g in every variable (scaled).
+
+    The minimiser takes fixed variables out and knows no multipliers of theirs: this slope, negative, is what they are.
+    """
+    constants = list(program.compiled.constants)
+    slope = np.asarray(program.functions["grad_f"](minimum.z, constants)[1]).ravel()
+    jacobian = program.functions["jac_g"](minimum.z, constants)[1]
+    return np.asarray(slope + np.asarray(ca.mtimes(jacobian.T, ca.DM(minimum.multipliers))).ravel())
 
 
 def curve(path: Trajectory) -> Curve:
@@ -182,7 +195,9 @@ def carry(path: Trajectory, mesh: Mesh, where: Layout) -> Carried:
     measures = where.measures * (ends - starts)
     density = _sample(path.breaks, _modes(source, path.multipliers, None), points)
     rows[order.pointwise : order.rims] = (density * measures[:, None]).ravel()
-    rows[order.rims :] = path.row_multipliers[source.rows.rims :]
+    if order.integrals - order.rims == source.rows.integrals - source.rows.rims:
+        rows[order.rims : order.integrals] = path.row_multipliers[source.rows.rims : source.rows.integrals]
+    rows[order.integrals :] = path.row_multipliers[source.rows.integrals :]
 
     bounds = np.zeros(where.size)
     old_measures = old.measures * (path.places[old.stretch + 1] - path.places[old.stretch])

@@ -136,7 +136,7 @@ def row_order(compiled: Compiled, mesh: Mesh, where: Layout) -> Rows:
     ends = count * point.states
     pointwise = ends + gauss * point.states
     rims = pointwise + count * point.constraints
-    integrals = rims + len(compiled.rims)
+    integrals = rims + len(compiled.rims) + len(_calm_entries(compiled, mesh))
     conditions = integrals + point.integrals
     return Rows(0, ends, pointwise, rims, integrals, conditions, conditions + compiled.end.outputs - 1)
 
@@ -229,6 +229,7 @@ def transcribe(compiled: Compiled, mesh: Mesh, scales: Scales, row_sizes: RowSiz
             np.tile(scales.states, len(gauss)),
             np.tile(row_sizes.pointwise, count),
             scales.controls[[control for control, _, _ in compiled.rims]],
+            scales.controls[[control for control, _, _ in _calm_entries(compiled, mesh)]],
             scales.integrals,
             row_sizes.conditions,
         ]
@@ -389,6 +390,11 @@ def _linear_part(
         all_rows.append(np.full(scheme.degree, rows.rims + rank))
         all_columns.append(where.controls[where.first[owner] : where.first[owner + 1], control])
         all_values.append(side @ scheme.control_modes)
+    for rank, (control, owner, mode) in enumerate(_calm_entries(compiled, mesh), start=len(compiled.rims)):
+        scheme = mesh.intervals[owner].scheme
+        all_rows.append(np.full(scheme.degree, rows.rims + rank))
+        all_columns.append(where.controls[where.first[owner] : where.first[owner + 1], control])
+        all_values.append(scheme.control_modes[mode])
     for key, scheme in schemes.items():
         members = np.flatnonzero(owners == key)
         points = where.first[members][:, None] + np.arange(scheme.degree)  # G x K
@@ -407,6 +413,19 @@ def _linear_part(
             all_values += [np.broadcast_to(scheme.extrapolate[None, :, None], wide).ravel(), -np.ones(row.size)]
     row, column, value = (np.concatenate(part) for part in (all_rows, all_columns, all_values))
     return row.astype(np.int64), column.astype(np.int64), value * scale[column] / row_scale[row]
+
+
+def _calm_entries(compiled: Compiled, mesh: Mesh) -> list[tuple[int, int, int]]:
+    """Control, interval and Legendre coefficient of everything that is kept at zero along calm stretches."""
+    lowered = compiled.lowered
+    calm = [(c.stretch, lowered.controls.index((c.name, c.order))) for c in lowered.problem.calm]
+    return [
+        (control, owner, mode)
+        for stretch, control in calm
+        for owner, interval in enumerate(mesh.intervals)
+        if interval.stretch == stretch
+        for mode in range((interval.scheme.degree + 1) // 2, interval.scheme.degree)
+    ]
 
 
 def _add_hessian(
