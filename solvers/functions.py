@@ -6,19 +6,20 @@ that its cost does not depend on how the mesh is cut.  Nothing here is scaled: a
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass
+from itertools import pairwise
 from math import pi
 
 import casadi as ca
 import numpy as np
 
 from solvers.formula.evaluate import evaluate
-from solvers.formula.nodes import At, Call, Name, Node, Number, children, with_children
+from solvers.formula.nodes import At, Call, Name, Node, Number, Sum, children, with_children
 from solvers.formula.printer import text
-from solvers.limits import quantity_bounds
+from solvers.limits import number, quantity_bounds
 from solvers.lowering import Lowered, Quantity, simple_bound
-from solvers.problem import Condition, Place
+from solvers.problem import Condition, Place, Problem
 
 SMOOTHING = 1e-9
 """Width, relative to one, over which `abs` and its kin are rounded so that they have derivatives."""
@@ -215,7 +216,7 @@ def _end_function(
     rims = []
     states = {q: k for k, q in enumerate(lowered.states)}
     controls = {q: k for k, q in enumerate(lowered.controls)}
-    for condition in (*problem.endpoints, *problem.integrals):
+    for condition in (*problem.endpoints, *problem.integrals, *_in_order(problem)):
         body = condition.body
         if isinstance(body, At) and (body.name, body.order) in states:
             fixed.append((states[body.name, body.order], place_index(problem.places, body.place), condition))
@@ -232,6 +233,22 @@ def _end_function(
     y = ca.vertcat(*values, places, parameters, totals)
     function = EndFunction(*_with_derivatives("end", y, constants, outputs))
     return tuple(conditions), tuple(fixed), tuple(rims), function
+
+
+def _in_order(problem: Problem) -> Iterator[Condition]:
+    """What keeps free places in order where their limits do not: a negative length could cost less than nothing."""
+    constants = {c.name: c.value for c in problem.constants}
+    free = {p.name: (p.lower, p.upper) for p in problem.parameters}
+
+    def limits(place: Place) -> tuple[float, float]:
+        if isinstance(place.tree, Name) and place.tree.name in free:
+            return free[place.tree.name]
+        return (number(place.tree, constants),) * 2
+
+    for before, after in pairwise(problem.places):
+        if limits(after)[0] < limits(before)[1]:
+            length = Sum((after.tree, before.tree), (False, True))
+            yield Condition(length, Number(0.0, "0"), None, f"{before.label} before {after.label}", "")
 
 
 def _total(index: int) -> str:

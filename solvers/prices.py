@@ -34,7 +34,7 @@ def prices(path: Trajectory) -> tuple[Price, ...]:
     found = [*_conditions(path, multipliers), *_limits(path, multipliers)]
     order = {c.pointer: k for k, c in enumerate((*problem.endpoints, *problem.integrals, *problem.constraints))}
     found.sort(key=lambda price: order.get(price.pointer, len(order)))
-    return tuple(Price(p.label, p.pointer, sign * p.price + 0.0) for p in found)
+    return tuple(Price(p.label, p.pointer, sign * p.price + 0.0) for p in found if p.pointer)
 
 
 def bound_multipliers(path: Trajectory) -> Array:
