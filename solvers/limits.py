@@ -63,6 +63,13 @@ def limits(compiled: Compiled, where: Layout, rows: Rows) -> tuple[Array, Array,
     lower[where.controls], upper[where.controls] = control_lower, control_upper
     for held in problem.held:
         _hold(held, compiled, where, lower, upper)
+    for touch in problem.touches:
+        node = where.at_place[[place.label for place in problem.places].index(touch.place)]
+        states = compiled.lowered.states
+        at = where.nodes[node, states.index((touch.name, touch.order))]
+        lower[at] = upper[at] = lower[at] if touch.side < 0 else upper[at]
+        slope = where.nodes[node, states.index((touch.name, touch.order + 1))]
+        lower[slope] = upper[slope] = 0.0
     for parameter, index in zip(problem.parameters, where.parameters, strict=True):
         lower[index], upper[index] = parameter.lower, parameter.upper
     for place, index in zip(problem.places, where.places, strict=True):

@@ -127,6 +127,16 @@ class Held:
 
 
 @dataclass(frozen=True, slots=True)
+class Touch:
+    """A state that touches its lower (side -1) or upper (side 1) limit at an inner place, with its slope zero there."""
+
+    place: str
+    name: str
+    order: int
+    side: int
+
+
+@dataclass(frozen=True, slots=True)
 class Calm:
     """A control that is free but acts linearly along a stretch (a singular arc): half the degree of the mesh is enough.
 
@@ -166,6 +176,7 @@ class Problem:
     constraints: tuple[Condition, ...] = ()  # pointwise: hold everywhere
     integrals: tuple[Condition, ...] = ()  # bodies hold `Call("integral", ...)`, may hold `At` and parameters too
     held: tuple[Held, ...] = ()  # found by the solver, never given by the user
+    touches: tuple[Touch, ...] = ()  # the same
     calm: tuple[Calm, ...] = ()  # the same
     options: Options = field(default_factory=Options)
     independent_unit: Unit = PLAIN

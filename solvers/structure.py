@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 from solvers.formula.nodes import Name, Node, Number, Power, Product, Sum
 from solvers.limits import quantity_bounds
 from solvers.lowering import Quantity
-from solvers.problem import Calm, Held, Parameter, Place, Problem
+from solvers.problem import Calm, Held, Parameter, Place, Problem, Touch
 from solvers.trajectory import Trajectory
 
 Array = NDArray[np.float64]
@@ -24,16 +24,21 @@ Indices = NDArray[np.int64]
 
 MOST_SWITCHES = 16
 ON_LIMIT = 1e-3
-"""How near to a limit, relative to the room it leaves, a quantity counts as on it."""
+"""How near to a limit, relative to the room it leaves, a control counts as on it."""
+TOUCH = 0.02
+"""How short, relative to the whole, a stay of a state on its limit counts as a touch."""
+STATE_ON_LIMIT = 1e-4
+"""The same for a state, which may come near to its limit without resting on it."""
 
 
 @dataclass(frozen=True, slots=True)
 class Switch:
-    """A switch at `place`, which lies between `low` and `high` for certain."""
+    """A switch at `place`, which lies between `low` and `high` for certain; or a touch of the `touching` state."""
 
     place: float
     low: float
     high: float
+    touching: tuple[Quantity, int] | None = None  # with the side that is touched
 
 
 @dataclass(frozen=True, slots=True)
@@ -52,9 +57,10 @@ class Signal:
         room = self.upper - self.lower
         if not np.isfinite(room):
             room = max(float(np.ptp(self.values)), 1e-300)
+        near = room * (STATE_ON_LIMIT if self.state else ON_LIMIT)
         labels = np.zeros(len(self.values), dtype=np.int64)
-        labels[self.values - self.lower < ON_LIMIT * room] = -1
-        labels[self.upper - self.values < ON_LIMIT * room] = 1
+        labels[self.values - self.lower < near] = -1
+        labels[self.upper - self.values < near] = 1
         return labels
 
 
@@ -84,20 +90,29 @@ def switches(path: Trajectory) -> list[Switch]:
 def _changes(path: Trajectory, signal: Signal) -> list[Switch]:
     """Places where the label of a signal changes.
 
-    A short passage of a control between two limits is one switch.  A state that only touches its limit has none.
+    A short passage of a control between two limits is one switch; a state that is at its limit for a point or two only
+    touches it there.
     """
+    states = path.program.compiled.lowered.states
+    smooth = signal.state and (signal.quantity[0], signal.quantity[1] + 1) in states
     labels, points, where = signal.labels, path.points, path.program.layout
+    span = float(np.ptp(path.places))
     owner = np.repeat(np.arange(len(where.first) - 1), np.diff(where.first))
-    kept = []
+    kept: list[tuple[int, int]] = []
+    found = []
     for first, last in _runs(labels):
         inner = first > 0 and last < len(labels) - 1
         short = owner[last] - owner[first] <= 1
         if inner and short and labels[first] == 0 and labels[first - 1] != labels[last + 1]:
             continue
-        if signal.state and short and labels[first] != 0:
+        brief = last - first < 2 or points[last] - points[first] < TOUCH * span
+        if signal.state and labels[first] != 0 and brief:
+            if inner and smooth:
+                middle = float(points[first] + points[last]) / 2
+                touching = (signal.quantity, int(labels[first]))
+                found.append(Switch(middle, float(points[first - 1]), float(points[last + 1]), touching))
             continue
         kept.append((first, last))
-    found = []
     for before, after in pairwise(kept):
         left, right = before[1], after[0]
         if labels[left] == labels[right]:
@@ -135,17 +150,22 @@ def _merged(found: list[Switch], path: Trajectory) -> list[Switch]:
     widths = np.diff(path.breaks)
     groups: list[list[Switch]] = []
     for switch in found:
-        if np.abs(path.places - switch.place).min() < 1e-3 * span:
+        if switch.touching is not None or np.abs(path.places - switch.place).min() < 1e-3 * span:
             continue
         width = float(widths[np.clip(np.searchsorted(path.breaks, switch.place) - 1, 0, len(widths) - 1)])
         if groups and switch.place - groups[-1][-1].place < min(width, 0.05 * span):
             groups[-1].append(switch)
         else:
             groups.append([switch])
-    return [
+    merged = [
         Switch(float(np.mean([s.place for s in group])), min(s.low for s in group), max(s.high for s in group))
         for group in groups
     ]
+    for touch in (switch for switch in found if switch.touching is not None):
+        taken = np.array([*path.places, *(switch.place for switch in merged)])
+        if np.abs(taken - touch.place).min() > 5e-3 * span:
+            merged.append(touch)
+    return sorted(merged, key=lambda switch: switch.place)
 
 
 def with_switches(problem: Problem, found: list[Switch], path: Trajectory, linear: list[Quantity]) -> Problem | None:
@@ -158,8 +178,7 @@ def with_switches(problem: Problem, found: list[Switch], path: Trajectory, linea
     own = _own_places(problem, path)
     kept = list(found)
     while True:
-        spots: list[tuple[float, Place | None]] = [*own, *((switch.place, None) for switch in kept)]
-        spots.sort(key=lambda spot: spot[0])
+        spots: list[Spot] = sorted([*own, *((switch.place, switch) for switch in kept)], key=lambda spot: spot[0])
         held = _held(path, np.array([place for place, _ in spots]))
         simpler = _without_contradiction(kept, spots, held)
         if simpler is None:
@@ -171,21 +190,24 @@ def with_switches(problem: Problem, found: list[Switch], path: Trajectory, linea
         return None
     places: list[Place] = []
     parameters: list[Parameter] = []
+    touches = []
     for index, (at, place) in enumerate(spots):
-        if place is None:
+        if isinstance(place, Switch):
             name = f"{SWITCH} {len(parameters) + 1}"
+            if place.touching is not None:
+                touches.append(Touch(name, *place.touching[0], place.touching[1]))
             low, high = spots[index - 1][0], spots[index + 1][0]
             parameters.append(Parameter(name, at - 0.45 * (at - low), at + 0.45 * (high - at), at))
-            place = Place(Name(name), name)
-        places.append(place)
+            places.append(Place(Name(name), name))
+        else:
+            places.append(place)
     calm = _calm(linear, len(places) - 1, held)
     parameters = [*problem.parameters, *parameters]
-    return replace(problem, places=tuple(places), parameters=tuple(parameters), held=held, calm=calm)
+    return replace(problem, places=tuple(places), parameters=tuple(parameters), held=held, calm=calm,
+                   touches=tuple(touches))  # fmt: skip
 
 
-def _without_contradiction(
-    kept: list[Switch], spots: list[tuple[float, Place | None]], held: tuple[Held, ...]
-) -> list[Switch] | None:
+def _without_contradiction(kept: list[Switch], spots: list[Spot], held: tuple[Held, ...]) -> list[Switch] | None:
     """Fewer switches where a stretch holds an unknown and a derivative of it, whose ends are one switch seen twice."""
     for stretch in range(len(spots) - 1):
         orders: dict[str, int] = {}
@@ -195,21 +217,19 @@ def _without_contradiction(
         if max(orders.values(), default=0) < 2:
             continue
         ends = [spots[stretch], spots[stretch + 1]]
-        inner = [at for at, place in ends if place is None]
+        inner = [at for at, place in ends if isinstance(place, Switch)]
         rest = [switch for switch in kept if switch.place not in inner]
         if len(inner) == 2:
-            middle = (inner[0] + inner[1]) / 2
-            rest = sorted([*rest, Switch(middle, *inner)], key=lambda switch: switch.place)
+            low, high = inner
+            rest = sorted([*rest, Switch((low + high) / 2, low, high)], key=lambda switch: switch.place)
         return rest
     return None
 
 
-def _without_needless(
-    kept: list[Switch], spots: list[tuple[float, Place | None]], held: tuple[Held, ...]
-) -> list[Switch] | None:
+def _without_needless(kept: list[Switch], spots: list[Spot], held: tuple[Held, ...]) -> list[Switch] | None:
     """Fewer switches where one has the same on both sides."""
     for index, (at, place) in enumerate(spots):
-        if place is None and _on(held, index - 1) == _on(held, index):
+        if isinstance(place, Switch) and place.touching is None and _on(held, index - 1) == _on(held, index):
             return [switch for switch in kept if switch.place != at]
     return None
 
@@ -217,7 +237,11 @@ def _without_needless(
 SWITCH = "switch"
 
 
-def _own_places(problem: Problem, path: Trajectory) -> list[tuple[float, Place | None]]:
+Spot = tuple[float, Place | Switch]
+"""A value of the independent variable, and what is there."""
+
+
+def _own_places(problem: Problem, path: Trajectory) -> list[Spot]:
     """The places of the problem itself with their values on a path that may have switches besides."""
     own = path.program.compiled.lowered.problem.places
     values = [float(v) for v, place in zip(path.places, own, strict=True) if not place.label.startswith(SWITCH + " ")]
@@ -226,9 +250,14 @@ def _own_places(problem: Problem, path: Trajectory) -> list[tuple[float, Place |
 
 def present_switches(path: Trajectory) -> list[Switch]:
     """The switches that are places of a path already."""
-    own = path.program.compiled.lowered.problem.places
-    return [Switch(float(v), float(v), float(v)) for v, place in zip(path.places, own, strict=True)
-            if place.label.startswith(SWITCH + " ")]  # fmt: skip
+    problem = path.program.compiled.lowered.problem
+    touches = {touch.place: ((touch.name, touch.order), touch.side) for touch in problem.touches}
+    switched = (
+        (float(v), place.label)
+        for v, place in zip(path.places, problem.places, strict=True)
+        if place.label.startswith(SWITCH + " ")
+    )
+    return [Switch(at, at, at, touches.get(label)) for at, label in switched]
 
 
 def _on(held: tuple[Held, ...], stretch: int) -> set[tuple[str, int, int]]:
