@@ -48,7 +48,7 @@ def run(
     """
     try:
         sampler = Sampler(path)
-        size = max(abs(path.value), 1e-3 * sampler.value_size)
+        size = max(abs(path.value), 1e-3 * abs(path.program.value_scale))
     except Exception as error:
         reason = f"The curve cannot be looked at: {error}"
         return tuple(Check(name, Status.FAILED, reason) for name in NAMES)

@@ -135,6 +135,7 @@ def continued(sampler: Sampler, places: Array) -> Continued:
     lacking = (
         np.where(weights > 0, np.abs(jumps * weights), 0.0) @ sampler.state_sizes > LACKING * sampler.program_value
     )
+    lacking |= (weights == 0).any(axis=1)  # at a fixed end a costate is free: no jump can tell
     kept = (touched(sampler) & lacking) | ~np.isfinite(inside).all(axis=(1, 2))
     stored = sampler.of(sampler.costates, np.repeat(every, len(places)), np.tile(places, count))
     inside[kept] = stored.reshape(count, -1, n)[kept]

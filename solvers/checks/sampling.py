@@ -237,7 +237,7 @@ class Sampler:
         terms = np.abs(self.halves_outputs * self.weights(self.halves, constraints=False))
         terms[:, n : n + self.point.constraints] = 0.0
         per_unit = np.nansum(terms, axis=1) / np.abs(self.end - self.start)[self.halves.interval]
-        floor = 1e-6 * abs(self.path.program.value_scale) / abs(self.span)
+        floor = 1e-3 * abs(self.path.program.value_scale) / abs(self.span)
         return max(float(self.mean(per_unit)), float(floor))
 
     @cached_property
@@ -248,7 +248,7 @@ class Sampler:
     @property
     def program_value(self) -> float:
         """A first size of the functional, before costates are at hand."""
-        return max(abs(self.path.value), 1e-6 * abs(self.path.program.value_scale))
+        return max(abs(self.path.value), 1e-3 * abs(self.path.program.value_scale))
 
     @cached_property
     def output_sizes(self) -> Array:

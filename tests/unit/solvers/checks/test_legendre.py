@@ -73,7 +73,7 @@ def test_a_linear_control_says_nothing(solved, examine):
 
 
 def test_the_least_eigenvalue_is_that_of_the_closed_form(solved):
-    """F_y'y' = (1 + y'^2)^(-3/2) = 2^(-3/2) on the diagonal line, relative to H of size 2 sqrt 2 - ... by definition."""
+    """F_y'y' = (1 + y'^2)^(-3/2) = 2^(-3/2) on the diagonal line."""
     sampler = Sampler(solved(LINE))
     least, free = legendre.least_eigenvalues(sampler)
     assert free.all()
