@@ -47,8 +47,8 @@ def test_the_example_has_the_printed_answer(answer):
     assert set(shown) == {"verdict", "value"}
     assert printed["verdict"] == shown["verdict"]
     # As many digits as both show; the stated error may differ from machine to machine.
-    number, unit = re.match(r"([\d.]+).* (\S+)$", printed["value"]).groups()
-    expected, expected_unit = re.match(r"([\d.]+).* (\S+)$", shown["value"]).groups()
+    number, unit = re.match(r"([\d.]+).*\s(\S+)$", printed["value"]).groups()
+    expected, expected_unit = re.match(r"([\d.]+).*\s(\S+)$", shown["value"]).groups()
     assert unit == expected_unit
     assert float(number) == pytest.approx(float(expected), abs=1e-6)
     assert answer.returncode == 0
