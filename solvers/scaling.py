@@ -50,8 +50,8 @@ SHRINKAGE = 1e-3
 def find_scales(compiled: Compiled, where: Layout, z: Array, before: Scales | None = None) -> Scales:
     """Sizes from values (SI) on a mesh: the largest value of each quantity, else its bounds, else its neighbours.
 
-    A quantity that is zero all along gets the size that its derivative or integral has over the whole range.  `before`
-    are the sizes on the mesh before, where there was one.
+    A quantity that is zero all along gets the size that its derivative or integral has over the whole range; a control
+    of which nothing is known that at which it moves a state.  `before` are the sizes on the mesh before, if any.
     """
     lowered = compiled.lowered
     places = z[where.places]
@@ -65,6 +65,8 @@ def find_scales(compiled: Compiled, where: Layout, z: Array, before: Scales | No
         for index, quantity in enumerate(quantities):
             size = float(np.abs(values[:, index]).max())
             sizes[quantity] = size or _finite_size(lower[index], upper[index])
+    known_names = {name for (name, _), size in sizes.items() if size > 0}
+    unknown = [quantity for quantity in lowered.controls if quantity[0] not in known_names]
     for name in {name for name, _ in sizes}:
         orders = sorted(order for other, order in sizes if other == name)
         known = [order for order in orders if sizes[name, order] > 0]
@@ -72,6 +74,10 @@ def find_scales(compiled: Compiled, where: Layout, z: Array, before: Scales | No
             if sizes[name, order] == 0:
                 near = min(known, key=lambda k: abs(k - order), default=None)
                 sizes[name, order] = span**-order if near is None else sizes[name, near] * span ** (near - order)
+    for index, quantity in enumerate(lowered.controls):
+        if quantity in unknown:
+            states = np.array([sizes[q] for q in lowered.states])
+            sizes[quantity] = _moving(compiled, where, z, index, states) or sizes[quantity]
     parameters = np.abs(z[where.parameters])
     integrals = _integral_sizes(compiled, where, z)
     for index, parameter in enumerate(lowered.problem.parameters):
@@ -87,6 +93,18 @@ def find_scales(compiled: Compiled, where: Layout, z: Array, before: Scales | No
     if before is None:
         return found
     return Scales(*(np.maximum(getattr(found, f.name), SHRINKAGE * getattr(before, f.name)) for f in fields(Scales)))
+
+
+def _moving(compiled: Compiled, where: Layout, z: Array, control: int, states: Array) -> float:
+    """The least size at which a control moves some state by its size, or changes what moves it; 0 where it does not."""
+    point = compiled.point
+    rates = np.abs(point_outputs(compiled, where, z)[:, : point.states]).max(axis=0, initial=0.0)
+    moves = np.maximum(states, np.where(np.isfinite(rates), rates, 0.0))
+    slopes = np.median(np.abs(point_slopes(compiled, where, z)), axis=0)
+    entries = zip(point.jacobian_rows, point.jacobian_columns, slopes, strict=True)
+    sizes = [moves[row] / slope for row, column, slope in entries
+             if column == point.states + control and row < point.states and 0 < slope < np.inf]  # fmt: skip
+    return float(min(sizes, default=0.0))
 
 
 def _integral_sizes(compiled: Compiled, where: Layout, z: Array) -> Array:
