@@ -92,3 +92,30 @@ def test_an_endpoint_value_of_a_given_derivative_is_its_formula():
 )
 def test_linear_controls(members, found):
     assert linear_controls(compiled(stated(**members))) == found
+
+
+@pytest.mark.parametrize(
+    "bounds, conditions",
+    [
+        ([None, None], ["0 before T"]),
+        ([0.5, None], []),  # its own bound sees to it
+        ([-1, 5], ["0 before T"]),
+        ([None, 5], ["0 before T"]),
+    ],
+)
+def test_a_free_end_stays_behind_the_start(bounds, conditions):
+    functions = compiled(stated(**LEAST_TIME | {"parameters": {"T": {"within": bounds}}}))
+    assert [condition.label for condition in functions.conditions] == conditions
+
+
+def test_free_places_stay_in_order():
+    functions = compiled(
+        stated(
+            independent={"name": "t", "from": 0, "to": 9},
+            parameters={"a": {"within": [0, 4]}, "b": {"within": [3, 9]}},
+            endpoints=["x(0) = 0", "x(a) = 1", "x(b) = -1", "x(9) = 0"],
+        )
+    )
+    assert [condition.label for condition in functions.conditions] == ["a before b"]
+    y = [0, 1, -1, 0, 0, 3.5, 3.25, 9, 3.5, 3.25]  # states and values of the places, then the parameters
+    assert float(functions.end.value(y, [])[0]) == -0.25

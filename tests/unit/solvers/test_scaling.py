@@ -148,6 +148,14 @@ def test_what_is_zero_takes_its_size_from_bounds_else_from_its_neighbours():
     assert scales.states[0] == pytest.approx(100 * scales.states[1])  # a span of 100 lies between them
 
 
+@pytest.mark.parametrize("gain", (1e-6, 1.0, 1e6))
+def test_a_control_of_which_nothing_is_known_is_sized_by_what_it_moves(gain):
+    """Else its unit would decide how the first mesh is scaled."""
+    problem = stated(constants={"k": gain}, dynamics=["x' = k*u"], endpoints=["x(0) = 3", "x(1) = 0"])
+    *_, scales = scales_of(problem)
+    assert scales.controls == pytest.approx([3 / gain])
+
+
 def test_an_integral_that_cancels_is_not_small():
     problem = stated(constraints=["integral(t - 1/2 + 0*x) <= 1"], endpoints=["x(0) = 0"])
     _, _, _, scales = scales_of(problem)
