@@ -25,7 +25,7 @@ from dataclasses import dataclass
 import numpy as np
 import scipy.sparse as sp
 from numpy.typing import NDArray
-from scipy.linalg import eigh, null_space
+from scipy.linalg import eigh, qr
 from scipy.sparse.linalg import ArpackError, LinearOperator, eigsh, lsqr, splu
 
 from solvers.checks import legendre
@@ -202,7 +202,7 @@ def count_negative(second: Second, free: Flags, rows: Flags, shift: float) -> Co
         return None
     rest = corner - side.T @ solve(side) if side.shape[1] else corner  # Schur complement of the band
     negative += int((np.linalg.eigvalsh((rest + rest.T) / 2) < 0).sum()) - coupling.shape[0]
-    if negative <= 0:
+    if negative <= 0 or shift < 0:  # only a count that stands against the margin needs its direction
         return Count(max(negative, 0), None)
 
     def inverse(vector: Array) -> Array:
@@ -217,7 +217,7 @@ def count_negative(second: Second, free: Flags, rows: Flags, shift: float) -> Co
         return Count(negative, np.ones((len(columns), 1)))
     start = np.sin(1.0 + np.arange(whole.shape[0]))
     try:
-        vectors = eigsh(operator, wanted, which="SA", v0=start, tol=1e-4, maxiter=200)[1]
+        vectors = eigsh(operator, wanted, which="SA", v0=start, tol=1e-4, maxiter=60)[1]
     except ArpackError as error:
         vectors = getattr(error, "eigenvectors", None)
     return Count(negative, None if vectors is None or not vectors.size else vectors[: len(columns)])
@@ -250,7 +250,9 @@ def _normal(jacobian: sp.csr_matrix) -> sp.csr_matrix:
 def least_quotient(second: Second, free: Flags, rows: Flags) -> float:
     """The least second variation relative to the mean square of a variation, on the exact kernel of the rows."""
     columns = np.flatnonzero(free)
-    kernel = null_space(_normal(second.jacobian[np.flatnonzero(rows)][:, columns]).toarray(), rcond=1e-12)
+    jacobian = _normal(second.jacobian[np.flatnonzero(rows)][:, columns]).toarray()
+    basis, triangle, _ = qr(jacobian.T, pivoting=True)
+    kernel = basis[:, np.count_nonzero(np.abs(np.diag(triangle)) > 1e-11) :]
     if not kernel.shape[1]:
         return np.inf
     bend = kernel.T @ (second.hessian[columns][:, columns] @ kernel)
