@@ -7,7 +7,7 @@ import numpy as np
 from solvers.collocation import Family
 from solvers.functions import compile_problem
 from solvers.guess import guesses
-from solvers.ipopt import Outcome, Start, minimise
+from solvers.ipopt import Minimum, Outcome, Start, minimise
 from solvers.lowering import lower
 from solvers.mesh import Mesh, interval, uniform
 from solvers.scaling import find_row_sizes, find_scales
@@ -103,3 +103,19 @@ def solved_on(problem, mesh=None, z=None):
     minimum = minimise(program, Start(np.asarray(start) / program.scale))
     assert minimum.outcome in (Outcome.SOLVED, Outcome.ACCEPTABLE), minimum.status
     return trajectory(program, minimum)
+
+
+def path_along(mesh, x, u, problem=None):
+    """A path whose state and control are given functions of t from 0 to 1, whatever the dynamics."""
+    problem = problem or stated(endpoints=["x(0) = 0"])
+    program = program_of(problem, mesh)
+    where = program.layout
+    z = np.zeros(where.size)
+    z[where.places] = [0, 1]
+    breaks = mesh.breaks(np.array([0.0, 1.0]))
+    z[where.nodes[:, 0]], z[where.inner[:, 0]] = x(breaks), x(where.fractions)
+    z[where.controls[:, 0]] = u(where.fractions)
+    none = Minimum(
+        Outcome.SOLVED, z / program.scale, 0.0, np.zeros(where.size), np.zeros(program.rows.count), 0, 0, 0, ""
+    )
+    return trajectory(program, none)
