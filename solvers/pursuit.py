@@ -101,9 +101,9 @@ def pursue(
     return pursuit
 
 
-def go_on(pursuit: Pursuit, watch: Watch | None, deadline: float) -> Pursuit:
+def go_on(pursuit: Pursuit, watch: Watch | None, deadline: float, meshes: int = MESHES) -> Pursuit:
     """Refine a pursuit further that was stopped after a few meshes."""
-    _go_on(pursuit, _Minimiser(pursuit, watch, deadline), MESHES)
+    _go_on(pursuit, _Minimiser(pursuit, watch, deadline), meshes)
     return pursuit
 
 
@@ -350,7 +350,8 @@ def _estimate_errors(pursuit: Pursuit, found: refinement.Estimate) -> None:
     last = pursuit.steps[-2].error or 0.0
     gain = float(np.clip(found.worst / last, 1e-2, 1.0)) if last > 0 else 1.0
     size = max(abs(now.value), abs(now.program.value_scale))
-    pursuit.value_error = 2 * gain * abs(now.value - before.value) + FLOOR * size
+    change = abs(now.value - before.value)
+    pursuit.value_error = 2 * gain * change + size * found.worst**2 + FLOOR * size
     pursuit.curve_error = gain * distance(now, before) + found.worst
 
 

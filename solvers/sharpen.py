@@ -8,7 +8,7 @@ from solvers.collocation import Family
 from solvers.functions import linear_controls
 from solvers.mesh import Interval, Mesh, interval
 from solvers.problem import Problem
-from solvers.pursuit import End, Pursuit, pursue
+from solvers.pursuit import End, Pursuit, go_on, pursue
 from solvers.solution import Watch
 from solvers.structure import SWITCH, held_rightly, present_switches, signals, softened, switches, with_switches
 from solvers.trajectory import Trajectory
@@ -69,12 +69,14 @@ def _with_structure(base: Pursuit, path: Trajectory, watch: Watch | None, deadli
         changed = with_switches(base.problem, found, path, linear)
         if changed is None:
             return None
-        pursuit = pursue(changed, watch, deadline, meshes=6, start=path, mesh=_mesh(changed))
+        pursuit = pursue(changed, watch, deadline, meshes=2, start=path, mesh=_mesh(changed))
         if not pursuit.solved:
             return None
         path = pursuit.paths[-1]
         if not _at_the_edge(path):
-            return pursuit if _agrees(pursuit, base) and held_rightly(path) else None
+            if not _agrees(pursuit, base) or not held_rightly(path):
+                return None
+            return pursuit if pursuit.end is End.CONVERGED else go_on(pursuit, watch, deadline, 4)
     return None
 
 

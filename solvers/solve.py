@@ -7,6 +7,7 @@ import time
 import numpy as np
 
 from solvers import checks
+from solvers.curve import Curve
 from solvers.diagnosis import diagnose
 from solvers.functions import compile_problem
 from solvers.gauge import Gauged, in_parametric_form
@@ -18,6 +19,7 @@ from solvers.problem import Problem
 from solvers.pursuit import End, Pursuit, first_mesh, go_on, pursue
 from solvers.scaling import find_scales
 from solvers.sharpen import sharpen
+from solvers.slack import SLACK, rounded_functions, with_slacks
 from solvers.solution import Solution, Verdict, Watch
 from solvers.structure import present_switches
 from solvers.trajectory import costate_curve, curve
@@ -43,7 +45,7 @@ def solve(problem: Problem, watch: Watch | None = None) -> Solution:
         pursuit = _in_given_form(gauged.problem, watch, deadline)
         if pursuit.solved or pursuit.end in (End.STOPPED, End.TIME):
             return _solution(problem, pursuit, gauged, began)
-    return _solution(problem, _in_given_form(problem, watch, deadline), None, began)
+    return _solution(problem, _in_given_form(with_slacks(problem), watch, deadline), None, began)
 
 
 def _in_given_form(problem: Problem, watch: Watch | None, deadline: float) -> Pursuit:
@@ -103,12 +105,13 @@ def _solution(problem: Problem, pursuit: Pursuit, gauged: Gauged | None, began: 
         shape, multipliers = as_graph(gauged, shape, multipliers, factor)
         if gauged.squared:
             value, value_error_or_none = root, value_error * factor if value_error_or_none is not None else None
+    kept = {name: functions for name, functions in shape.functions.items() if not name.startswith(SLACK + " ")}
     return Solution(
         verdict=verdict,
         value=value,
         value_error=value_error_or_none,
         parameters=parameters,
-        curve=shape,
+        curve=Curve(shape.breaks, kept),
         curve_error=curve_error,
         costates=multipliers,
         prices=bought,
@@ -127,6 +130,11 @@ def _notes(problem: Problem, pursuit: Pursuit, gauged: Gauged | None) -> list[st
     if gauged is not None:
         speed = "in which the cost grows evenly" if gauged.squared else "at constant speed"
         notes.append(f"The integrand grows linearly with the slope: the curve was found in parametric form, {speed}.")
+    if len(pursuit.problem.unknowns) > len(problem.unknowns) and gauged is None:
+        notes.append("abs and max in the integrand were written exactly, with auxiliary unknowns that bound them.")
+    rounded = sorted(rounded_functions(pursuit.problem))
+    if rounded:
+        notes.append(f"{', '.join(rounded)} in the formulas: rounded over a width of 1e-9, so that derivatives exist.")
     found = present_switches(pursuit.paths[-1])
     if found:
         unit = f" {problem.independent_unit.text}" if problem.independent_unit.text else ""

@@ -27,6 +27,8 @@ ON_LIMIT = 1e-3
 """How near to a limit, relative to the room it leaves, a control counts as on it."""
 TOUCH = 0.02
 """How short, relative to the whole, a stay of a state on its limit counts as a touch."""
+COLLAPSED = 3e-3
+"""Width, relative to the whole, of a stretch that is about to vanish."""
 STATE_ON_LIMIT = 1e-4
 """The same for a state, which may come near to its limit without resting on it."""
 
@@ -176,7 +178,7 @@ def with_switches(problem: Problem, found: list[Switch], path: Trajectory, linea
     A switch on both sides of which the same controls are held on the same limits is none; None where none is left.
     """
     own = _own_places(problem, path)
-    kept = list(found)
+    kept = _without_collapsed(found, COLLAPSED * float(np.ptp(path.places)))
     while True:
         spots: list[Spot] = sorted([*own, *((switch.place, switch) for switch in kept)], key=lambda spot: spot[0])
         held = _held(path, np.array([place for place, _ in spots]))
@@ -205,6 +207,18 @@ def with_switches(problem: Problem, found: list[Switch], path: Trajectory, linea
     parameters = [*problem.parameters, *parameters]
     return replace(problem, places=tuple(places), parameters=tuple(parameters), held=held, calm=calm,
                    touches=tuple(touches))  # fmt: skip
+
+
+def _without_collapsed(found: list[Switch], width: float) -> list[Switch]:
+    """Two switches with next to nothing between them as one."""
+    kept: list[Switch] = []
+    for switch in found:
+        if kept and switch.place - kept[-1].place < width:
+            low, high = kept[-1].place, switch.place
+            kept[-1] = Switch((low + high) / 2, low, high, kept[-1].touching or switch.touching)
+        else:
+            kept.append(switch)
+    return kept
 
 
 def _without_contradiction(kept: list[Switch], spots: list[Spot], held: tuple[Held, ...]) -> list[Switch] | None:
