@@ -1,0 +1,43 @@
+"""Diagnoses: the reason as a word, the sentence in the terms of the problem, what to do."""
+
+import pytest
+
+from solvers.diagnosis import diagnose
+from solvers.pursuit import End, Pursuit
+from solvers.solution import Finding
+from tests.unit.solvers.problems import compiled, stated
+
+
+def pursuit(end, *findings):
+    problem = stated()
+    return Pursuit(problem, compiled(problem), end, findings=findings)
+
+
+@pytest.mark.parametrize("end", End)
+def test_every_end_has_its_diagnosis_or_needs_none(end):
+    found = diagnose(pursuit(end))
+    if end in (End.CONVERGED, End.SETTLED):
+        assert found is None
+    else:
+        assert found.reason == end.value
+        assert found.sentence.endswith(".")
+
+
+def test_conflicts_are_named():
+    findings = tuple(Finding(f"condition {k}", f"/constraints/{k}", 1.0) for k in range(5))
+    found = diagnose(pursuit(End.INFEASIBLE, *findings))
+    assert "'condition 0'; 'condition 1'; 'condition 2'." in found.sentence
+    assert "condition 3" not in found.sentence
+    assert found.findings == findings
+
+
+def test_what_is_undefined_is_shown_with_its_place():
+    found = diagnose(pursuit(End.UNDEFINED, Finding("log(y)", "/where/w", None, 0.25, "with y = -2")))
+    assert "'log(y)' at 0.25 (with y = -2)" in found.sentence
+    somewhere = diagnose(pursuit(End.UNDEFINED, Finding("log(y)", "/where/w", None, None, "with y = -2")))
+    assert "'log(y)' (with y = -2)" in somewhere.sentence
+
+
+@pytest.mark.parametrize("end, advice", [(End.TIME, "solve.time_limit"), (End.POINTS, "solve.points")])
+def test_limits_say_which_setting_to_raise(end, advice):
+    assert f"`{advice}`" in diagnose(pursuit(end)).sentence
