@@ -200,11 +200,12 @@ def carry(path: Trajectory, mesh: Mesh, where: Layout) -> Carried:
     rows[order.integrals :] = path.row_multipliers[source.rows.integrals :]
 
     bounds = np.zeros(where.size)
+    pushes = np.where(source.lower == source.upper, 0.0, path.bound_multipliers)  # what fixes one value stays there
     old_measures = old.measures * (path.places[old.stretch + 1] - path.places[old.stretch])
     nearest = np.searchsorted((path.points[1:] + path.points[:-1]) / 2, points)  # multipliers of bounds may jump
     for new, before in ((where.inner, old.inner), (where.controls, old.controls)):
-        bounds[new] = (path.bound_multipliers[before] / old_measures[:, None])[nearest] * measures[:, None]
-    bounds[where.parameters] = path.bound_multipliers[old.parameters]
+        bounds[new] = (pushes[before] / old_measures[:, None])[nearest] * measures[:, None]
+    bounds[where.parameters] = pushes[old.parameters]
     return Carried(z, bounds, rows)
 
 
