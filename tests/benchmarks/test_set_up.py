@@ -39,7 +39,7 @@ def seconds_to_first_iteration(intervals: int) -> float:
     compiled = compile_problem(lower(assemble(read(CRANE))))
     mesh = uniform(1, intervals, DEGREE, Family.RADAU)
     where = layout(compiled, mesh)
-    guess = guesses(compiled, where)[0]
+    guess = guesses(compiled, mesh, where)[0]
     scales = find_scales(compiled, where, guess.z)
     program = transcribe(compiled, mesh, scales, find_row_sizes(compiled, where, scales, guess.z))
     minimise(program, Start(guess.z / program.scale), watch=stop)
