@@ -21,7 +21,7 @@ from solvers.units import PLAIN, Unit
 from web.unit_text import per
 
 FORMAT = 1
-NUMERICAL_PARTS = ("curvewright", "casadi", "numpy", "scipy", "sympy")
+NUMERICAL_PARTS = ("curvewright", "casadi", "numpy", "scipy")
 _PRIMED = re.compile(r"(.*?)('*)", re.DOTALL)
 
 

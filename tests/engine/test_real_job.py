@@ -52,6 +52,6 @@ def test_the_composer_gets_the_conditions_in_symbols(solving):
 
 def test_the_server_side_imports_nothing_that_only_workers_need():
     code = "import sys, service.dispatch, service.store; print([m for m in sys.modules if m in %r])"
-    heavy = ("casadi", "scipy", "sympy", "numpy", "alembic", "service.jobs")
+    heavy = ("casadi", "scipy", "numpy", "alembic", "service.jobs")
     found = subprocess.run([sys.executable, "-c", code % (heavy,)], capture_output=True, text=True, check=True)
     assert found.stdout == "[]\n"
