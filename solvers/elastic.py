@@ -15,10 +15,11 @@ import casadi as ca
 import numpy as np
 from numpy.typing import NDArray
 
+from solvers.entries import sparse
 from solvers.ipopt import Iterate, Minimum, Start, minimise
 from solvers.lowering import Quantity, primed
 from solvers.solution import Finding
-from solvers.transcription import Program, sparse
+from solvers.transcription import Program
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from solvers.functions import Compiled
 
 if TYPE_CHECKING:
-    from solvers.transcription import Layout
+    from solvers.layout import Layout
 
 Array = NDArray[np.float64]
 

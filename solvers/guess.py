@@ -15,11 +15,11 @@ from numpy.typing import NDArray
 
 from solvers.evaluation import end_inputs, point_outputs
 from solvers.functions import Compiled
+from solvers.layout import Layout
 from solvers.limits import constants_of, interval_of, number
 from solvers.mesh import Mesh
 from solvers.problem import Parameter, Problem
 from solvers.sketch import Bend, sketch
-from solvers.transcription import Layout
 
 Array = NDArray[np.float64]
 

@@ -14,7 +14,7 @@ from solvers.problem import Condition, Held
 
 if TYPE_CHECKING:
     from solvers.functions import Compiled
-    from solvers.transcription import Layout, Rows
+    from solvers.layout import Layout, Rows
 
 Array = NDArray[np.float64]
 

@@ -17,13 +17,14 @@ from solvers.elastic import LeastViolation, least_violation
 from solvers.functions import Compiled, compile_problem
 from solvers.guess import guesses
 from solvers.ipopt import Iterate, Minimum, Outcome, Start, minimise
+from solvers.layout import Layout, layout
 from solvers.lowering import lower
 from solvers.mesh import Mesh, interval, uniform
 from solvers.problem import Problem
 from solvers.scaling import Scales, find_row_sizes, find_scales
 from solvers.solution import Finding, MeshStep, Progress, Watch
 from solvers.trajectory import Trajectory, carry, distance, related, trajectory
-from solvers.transcription import Layout, Program, layout, transcribe
+from solvers.transcription import Program, transcribe
 from solvers.undefined import undefined_places
 
 Array = NDArray[np.float64]

@@ -13,7 +13,7 @@ from solvers.limits import quantity_bounds
 
 if TYPE_CHECKING:
     from solvers.functions import Compiled
-    from solvers.transcription import Layout
+    from solvers.layout import Layout
 
 Array = NDArray[np.float64]
 

@@ -13,11 +13,11 @@ from numpy.typing import NDArray
 from solvers.formula.evaluate import evaluate
 from solvers.formula.nodes import Node
 from solvers.functions import Compiled
+from solvers.layout import Layout
 from solvers.limits import constants_of, interval_of, quantity_bounds
 from solvers.lowering import Quantity
 from solvers.mesh import Mesh
 from solvers.problem import Unknown
-from solvers.transcription import Layout
 
 Array = NDArray[np.float64]
 

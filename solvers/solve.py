@@ -7,12 +7,14 @@ import time
 import numpy as np
 
 from solvers import checks
+from solvers.checks.redundancy import unambiguous
 from solvers.curve import Curve
 from solvers.diagnosis import diagnose
 from solvers.functions import compile_problem
 from solvers.gauge import Gauged, in_parametric_form
 from solvers.graph import as_graph, checks_on_graph, prices_of_original
 from solvers.guess import guesses
+from solvers.layout import layout
 from solvers.lowering import lower
 from solvers.prices import prices
 from solvers.problem import Problem
@@ -23,8 +25,6 @@ from solvers.slack import SLACK, rounded_functions, with_slacks
 from solvers.solution import Solution, Verdict, Watch
 from solvers.structure import present_switches
 from solvers.trajectory import costate_curve, curve
-from solvers.transcription import layout
-from solvers.verdict import End as SearchEnd
 from solvers.verdict import judge
 
 EARLY = {End.INFEASIBLE: Verdict.INFEASIBLE, End.UNBOUNDED: Verdict.NO_OPTIMUM}
@@ -86,7 +86,7 @@ def _solution(problem: Problem, pursuit: Pursuit, gauged: Gauged | None, began: 
         nearest = None if pursuit.nearest is None or gauged is not None else curve(pursuit.nearest)
         return Solution(EARLY.get(pursuit.end), curve=nearest, diagnosis=diagnosis, meshes=tuple(pursuit.steps),
                         iterations=pursuit.iterations, times=times)  # fmt: skip
-    path = pursuit.paths[-1]
+    path = unambiguous(pursuit.paths[-1])
     names = {p.name for p in problem.parameters}
     parameters = {p.name: float(v) for p, v in zip(pursuit.problem.parameters, path.parameters, strict=True)
                   if p.name in names}  # fmt: skip
@@ -94,8 +94,7 @@ def _solution(problem: Problem, pursuit: Pursuit, gauged: Gauged | None, began: 
     value_error_or_none = value_error if np.isfinite(value_error) else None
     curve_error = pursuit.curve_error if np.isfinite(pursuit.curve_error) else None
     made = checks.run(path, original=problem, value_error=value_error_or_none, curve_error=curve_error)
-    end = SearchEnd.CONVERGED if pursuit.end in (End.CONVERGED, End.SETTLED) else SearchEnd.LIMIT
-    verdict = judge(problem.seek, made, end)
+    verdict = judge(problem.seek, made, pursuit.end)
     shape, multipliers, bought = curve(path), costate_curve(path), prices(path)
     if gauged is not None:
         root = float(np.sqrt(value)) if gauged.squared else 1.0

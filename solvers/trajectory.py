@@ -17,11 +17,12 @@ from solvers.collocation import Family
 from solvers.curve import Curve
 from solvers.functions import Compiled
 from solvers.ipopt import Minimum, Start
+from solvers.layout import Layout, row_order
 from solvers.limits import constants_of, number
 from solvers.lowering import primed
 from solvers.mesh import Mesh
 from solvers.problem import Seek
-from solvers.transcription import Layout, Program, row_order
+from solvers.transcription import Program
 
 Array = NDArray[np.float64]
 

@@ -11,10 +11,10 @@ from solvers.formula.evaluate import evaluate
 from solvers.formula.nodes import Name, Node, children, walk
 from solvers.formula.printer import text
 from solvers.functions import Compiled
+from solvers.layout import Layout
 from solvers.limits import constants_of
 from solvers.sketch import ARRAYS
 from solvers.solution import Finding
-from solvers.transcription import Layout
 
 Array = NDArray[np.float64]
 

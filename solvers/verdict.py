@@ -8,35 +8,12 @@ variation) or everywhere (convexity).
 from __future__ import annotations
 
 from collections.abc import Sequence
-from enum import Enum
 
-from solvers.checks import (
-    conditions,
-    convexity,
-    curvature,
-    first_integral,
-    free_ends,
-    legendre,
-    limits,
-    motion,
-    refinement,
-    stationarity,
-)
+from solvers.checks import FEASIBLE, FIRST_ORDER, convexity, curvature, legendre
 from solvers.problem import Seek
+from solvers.pursuit import End
 from solvers.solution import Check, Status, Verdict
 
-
-class End(Enum):
-    """How the search for the curve ended."""
-
-    CONVERGED = "converged"
-    LIMIT = "a limit was reached"
-    INFEASIBLE = "infeasible"
-    UNBOUNDED = "unbounded"
-
-
-FEASIBLE = (motion.NAME, limits.NAME, conditions.NAME)
-FIRST_ORDER = (stationarity.NAME, free_ends.NAME, first_integral.NAME, refinement.NAME)
 
 _WORDS = {
     Seek.MINIMUM: (Verdict.GLOBAL_MINIMUM, Verdict.LOCAL_MINIMUM, Verdict.NOT_A_MINIMUM),
@@ -61,7 +38,7 @@ def judge(seek: Seek, checks: Sequence[Check], end: End = End.CONVERGED) -> Verd
 
     if not holds(FEASIBLE):
         return Verdict.NOT_VERIFIED
-    if end is End.LIMIT:
+    if end not in (End.CONVERGED, End.SETTLED):
         return Verdict.BEST_FOUND
     if not holds(FIRST_ORDER):
         return Verdict.NOT_VERIFIED

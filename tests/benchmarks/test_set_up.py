@@ -18,10 +18,11 @@ from solvers.collocation import Family, scheme
 from solvers.functions import compile_problem
 from solvers.guess import guesses
 from solvers.ipopt import Start, minimise
+from solvers.layout import layout
 from solvers.lowering import lower
 from solvers.mesh import uniform
 from solvers.scaling import find_row_sizes, find_scales
-from solvers.transcription import layout, transcribe
+from solvers.transcription import transcribe
 
 CRANE = (Path(__file__).parents[1] / "acceptance/problems/C16a.json").read_bytes()
 DEGREE = 4

@@ -8,11 +8,12 @@ from solvers.collocation import Family
 from solvers.functions import compile_problem
 from solvers.guess import guesses
 from solvers.ipopt import Minimum, Outcome, Start, minimise
+from solvers.layout import layout
 from solvers.lowering import lower
 from solvers.mesh import Mesh, interval, uniform
 from solvers.scaling import find_row_sizes, find_scales
 from solvers.trajectory import trajectory
-from solvers.transcription import layout, transcribe
+from solvers.transcription import transcribe
 from tests.unit.service.assemble import stating
 
 LEAST_TIME = {

@@ -4,9 +4,9 @@ import numpy as np
 import pytest
 
 from solvers.guess import guesses
+from solvers.layout import layout
 from solvers.mesh import uniform
 from solvers.sketch import Bend, sketch
-from solvers.transcription import layout
 from tests.unit.solvers.problems import LEAST_TIME, compiled, shape, stated
 
 

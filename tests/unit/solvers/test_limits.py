@@ -4,10 +4,10 @@ from dataclasses import replace
 
 import numpy as np
 
+from solvers.layout import layout, row_order
 from solvers.limits import interval_of, limits, number, quantity_bounds
 from solvers.mesh import uniform
 from solvers.problem import Held
-from solvers.transcription import layout, row_order
 from tests.unit.solvers.problems import LEAST_TIME, compiled, stated
 
 INFINITE = np.inf

@@ -3,10 +3,10 @@
 import numpy as np
 import pytest
 
+from solvers.layout import layout
 from solvers.mesh import uniform
 from solvers.scaling import find_row_sizes, find_scales
 from solvers.solve import solve
-from solvers.transcription import layout
 from tests.unit.solvers.problems import compiled, solved_on, start_of, stated
 
 MESH = uniform(1, 6, 6)

@@ -11,9 +11,9 @@ import pytest
 
 from solvers.collocation import Family
 from solvers.ipopt import Minimum, Outcome, Start, minimise
+from solvers.layout import layout
 from solvers.mesh import Mesh, interval, uniform
 from solvers.trajectory import carry, costate_curve, curve, distance, related, trajectory
-from solvers.transcription import layout
 from tests.unit.solvers.problems import (
     LEAST_TIME,
     compiled,

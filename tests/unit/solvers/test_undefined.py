@@ -3,8 +3,8 @@
 import numpy as np
 import pytest
 
+from solvers.layout import layout
 from solvers.mesh import uniform
-from solvers.transcription import layout
 from solvers.undefined import undefined_places
 from tests.unit.solvers.problems import compiled, shape, start_of, stated
 

@@ -6,8 +6,9 @@ import pytest
 
 from solvers import checks
 from solvers.problem import Seek
+from solvers.pursuit import End
 from solvers.solution import Check, Status, Verdict
-from solvers.verdict import End, failures, judge
+from solvers.verdict import failures, judge
 
 FIRST = ("motion", "limits", "conditions", "stationarity", "free ends", "first integral", "refinement")
 P, F, N = Status.PASSED, Status.FAILED, Status.NOT_APPLICABLE
@@ -61,8 +62,8 @@ def test_a_check_that_is_missing_counts_as_failed(name):
 def test_early_ends():
     assert judge(Seek.MINIMUM, (), End.INFEASIBLE) is Verdict.INFEASIBLE
     assert judge(Seek.MINIMUM, (), End.UNBOUNDED) is Verdict.NO_OPTIMUM
-    assert judge(Seek.MINIMUM, found(refinement=F, stationarity=F), End.LIMIT) is Verdict.BEST_FOUND
-    assert judge(Seek.MINIMUM, found(limits=F), End.LIMIT) is Verdict.NOT_VERIFIED
+    assert judge(Seek.MINIMUM, found(refinement=F, stationarity=F), End.POINTS) is Verdict.BEST_FOUND
+    assert judge(Seek.MINIMUM, found(limits=F), End.POINTS) is Verdict.NOT_VERIFIED
 
 
 def test_global_is_claimed_only_with_everything_of_first_order_and_convexity():

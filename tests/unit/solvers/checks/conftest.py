@@ -16,12 +16,13 @@ from service.spec import read
 from solvers.checks.sampling import Sampler
 from solvers.functions import compile_problem
 from solvers.ipopt import Minimum, Outcome
+from solvers.layout import layout
 from solvers.lowering import lower
 from solvers.mesh import uniform
 from solvers.pursuit import pursue
 from solvers.scaling import find_row_sizes, find_scales
 from solvers.trajectory import trajectory
-from solvers.transcription import layout, transcribe
+from solvers.transcription import transcribe
 
 
 def problem_of(document):

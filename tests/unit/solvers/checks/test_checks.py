@@ -5,7 +5,7 @@ import time
 import pytest
 
 from solvers import checks
-from solvers.checks import stationarity
+from solvers.checks import curvature, stationarity
 from solvers.solution import Status
 
 LINE = {
@@ -34,9 +34,25 @@ def test_a_check_that_breaks_has_failed_and_says_why(solved, monkeypatch):
     assert found["motion"].status is Status.PASSED
 
 
-def test_past_the_deadline_none_passes(solved):
-    made = checks.run(solved(LINE), deadline=time.perf_counter() - 1)
-    assert {check.status for check in made} == {Status.FAILED}
+def test_without_time_nothing_passes(solved):
+    made = checks.run(solved(LINE), value_error=1e-9, curve_error=1e-9, budget=-1.0)
+    assert {check.name for check in made if check.status is Status.FAILED} == {*checks.FEASIBLE, *checks.FIRST_ORDER}
+    assert {check.name for check in made if check.status is Status.NOT_APPLICABLE} == set(checks.OPTIONAL)
+
+
+def test_the_second_variation_gives_up_when_its_time_is_over(solved, examine):
+    check = examine(curvature.check, solved(LINE), time.perf_counter())
+    assert check.status is Status.NOT_APPLICABLE
+    assert "in the time there was" in check.sentence
+
+
+def test_neighbours_of_a_curve_that_is_not_feasible_prove_nothing(solved, drawn):
+    """A parabola whose slope is said to be one."""
+    bent = drawn(solved(LINE), [lambda x: x**2], [lambda x: 1 + 0 * x])
+    found = {check.name: check for check in checks.run(bent, value_error=0.0, curve_error=0.0)}
+    assert found["motion"].status is Status.FAILED
+    assert found["conjugate points"].status is Status.NOT_APPLICABLE
+    assert found["conjugate points"].sentence == "Not made: the curve is not feasible."
 
 
 def test_an_undefined_curve_passes_nothing_that_looks_at_it(sketched):
