@@ -14,7 +14,6 @@ from solvers.problem import Seek
 from solvers.pursuit import End
 from solvers.solution import Check, Status, Verdict
 
-
 _WORDS = {
     Seek.MINIMUM: (Verdict.GLOBAL_MINIMUM, Verdict.LOCAL_MINIMUM, Verdict.NOT_A_MINIMUM),
     Seek.MAXIMUM: (Verdict.GLOBAL_MAXIMUM, Verdict.LOCAL_MAXIMUM, Verdict.NOT_A_MAXIMUM),

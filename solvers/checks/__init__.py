@@ -31,6 +31,15 @@ NAMES = (motion.NAME, limits.NAME, conditions.NAME, stationarity.NAME, free_ends
          legendre.NAME, curvature.NAME, convexity.NAME, refinement.NAME)  # fmt: skip
 """The names of all checks in the order in which they are made and shown."""
 
+FEASIBLE = (motion.NAME, limits.NAME, conditions.NAME)
+"""The checks that look at what the problem demands of any curve."""
+
+FIRST_ORDER = (stationarity.NAME, free_ends.NAME, first_integral.NAME, refinement.NAME)
+"""The checks of what every extremum has."""
+
+OPTIONAL = (legendre.NAME, curvature.NAME, convexity.NAME)
+"""The checks that only refine what the others have shown."""
+
 
 def run(
     path: Trajectory,
@@ -38,14 +47,17 @@ def run(
     original: Problem | None = None,
     value_error: float | None = None,
     curve_error: float | None = None,
-    deadline: float = float("inf"),
+    budget: float | None = None,
 ) -> tuple[Check, ...]:
     """Make all checks of a solved mesh.
 
     `original` is the problem as stated where the mesh is of an equivalent form: convexity depends on the form.
     `value_error` (SI) and `curve_error` (relative) are what the refinement states, None where there was no second mesh.
-    `deadline` is on the clock of `time.perf_counter`: checks that would start later fail with that reason.
+    `budget` is how many seconds they may take in all, at first a second or a fifth of the time limit.  What the time
+    does not suffice for has not been shown: a feasibility or first-order check then fails, one of second order says
+    nothing.  Nor does that one where the curve is not even feasible: neighbours of a wrong curve prove nothing.
     """
+    deadline = time.perf_counter() + (_budget(path) if budget is None else budget)
     try:
         sampler = Sampler(path)
         size = max(abs(path.value), 1e-3 * abs(path.program.value_scale))
@@ -53,26 +65,41 @@ def run(
         reason = f"The curve cannot be looked at: {error}"
         return tuple(Check(name, Status.FAILED, reason) for name in NAMES)
     tolerance = sampler.tolerance
-    made: tuple[tuple[str, Callable[[], Check]], ...] = (
-        (motion.NAME, lambda: motion.check(sampler)),
+    made: list[Check] = []
+
+    def of_second_order() -> Check:
+        if any(check.name in FEASIBLE and check.status is Status.FAILED for check in made):
+            return Check(curvature.NAME, Status.NOT_APPLICABLE, "Not made: the curve is not feasible.")
+        return curvature.check(sampler, deadline)
+
+    planned: tuple[tuple[str, Callable[[], Check]], ...] = (
+        (motion.NAME, lambda: motion.check(sampler, deadline)),
         (limits.NAME, lambda: limits.check(sampler)),
         (conditions.NAME, lambda: conditions.check(sampler, value_error)),
         (stationarity.NAME, lambda: stationarity.check(sampler)),
         (free_ends.NAME, lambda: free_ends.check(sampler)),
         (first_integral.NAME, lambda: first_integral.check(sampler)),
         (legendre.NAME, lambda: legendre.check(sampler)),
-        (curvature.NAME, lambda: curvature.check(sampler)),
+        (curvature.NAME, of_second_order),
         (convexity.NAME, lambda: convexity.check(original or sampler.problem)),
         (refinement.NAME, lambda: refinement.check(value_error, size, curve_error, tolerance)),
     )
     with np.errstate(all="ignore"):
-        return tuple(_made(name, one, deadline) for name, one in made)
+        for name, one in planned:
+            made.append(_made(name, one, deadline))
+    return tuple(made)
+
+
+def _budget(path: Trajectory) -> float:
+    """Seconds for all checks where nothing else is said."""
+    return max(1.0, 0.2 * path.program.compiled.lowered.problem.options.time_limit)
 
 
 def _made(name: str, one: Callable[[], Check], deadline: float) -> Check:
     """One check, whatever happens."""
     if time.perf_counter() > deadline:
-        return Check(name, Status.FAILED, "Not made: the time was over.")
+        status = Status.NOT_APPLICABLE if name in OPTIONAL else Status.FAILED
+        return Check(name, status, "Not made: the time was over.")
     try:
         return one()
     except Exception as error:  # a broken check must not pass, and must not take the result down

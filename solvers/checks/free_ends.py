@@ -28,7 +28,7 @@ Finding = tuple[float, float | None, str, str]
 def check(sampler: Sampler) -> Check:
     """The largest figure against the square root of the tolerance."""
     threshold = float(np.sqrt(sampler.tolerance))
-    y, slopes = _end_slopes(sampler)
+    y, slopes = sampler.end_slopes
     findings = [*_states(sampler, slopes), *_numbers(sampler, slopes), *_integrals(sampler, slopes),
                 *_conditions(sampler, y)]  # fmt: skip
     if not findings:
@@ -36,18 +36,6 @@ def check(sampler: Sampler) -> Check:
     figure, place, subject, sentence = max(findings, key=lambda finding: finding[0])
     status = Status.PASSED if figure <= threshold else Status.FAILED
     return Check(NAME, status, sentence, figure, threshold, place, subject)
-
-
-def _end_slopes(sampler: Sampler) -> tuple[Array, Array]:
-    """The inputs of the end function, and the slopes of endpoint term + multipliers x conditions by them."""
-    path, end, where = sampler.path, sampler.compiled.end, sampler.path.program.layout
-    y = np.concatenate([path.nodes[where.at_place].ravel(), path.places, path.parameters, path.z[where.integrals]])
-    weights = np.append(path.row_multipliers[path.program.rows.conditions :], sampler.sign)
-    numbers = mapped(end.jacobian, y[None, :], sampler.constants[None, :])[0]
-    slopes = np.zeros(len(y))
-    for row, column, number in zip(end.jacobian_rows, end.jacobian_columns, numbers, strict=True):
-        slopes[column] += weights[row] * number
-    return y, slopes
 
 
 def _step(value: float, slope: float, size: float, lower: float, upper: float, whole: float) -> float:

@@ -177,6 +177,18 @@ class Sampler:
         held = {(state, place) for state, place, condition in self.compiled.fixed if condition.equality}
         return [((j, 0) in held, (j, last) in held) for j in range(self.point.states)]
 
+    @cached_property
+    def end_slopes(self) -> tuple[Array, Array]:
+        """The inputs of the end function, and the slopes of endpoint term + multipliers x conditions by them."""
+        path, end, where = self.path, self.compiled.end, self.path.program.layout
+        y = np.concatenate([path.nodes[where.at_place].ravel(), path.places, path.parameters, path.z[where.integrals]])
+        weights = np.append(path.row_multipliers[path.program.rows.conditions :], self.sign)
+        numbers = mapped(end.jacobian, y[None, :], self.constants[None, :])[0]
+        slopes = np.zeros(len(y))
+        for row, column, number in zip(end.jacobian_rows, end.jacobian_columns, numbers, strict=True):
+            slopes[column] += weights[row] * number
+        return y, slopes
+
     def holds_controls(self, output: int) -> bool:
         """True where an output of the point function depends on a control."""
         n, m = self.point.states, self.point.controls

@@ -32,6 +32,9 @@ Array = NDArray[np.float64]
 
 NAME = "stationarity"
 
+RESTING = 1e-6
+"""How near to its limit, relative to its size, a state rests on it."""
+
 Finding = tuple[float, float, str, str]
 """Figure, place, subject, sentence."""
 
@@ -88,10 +91,9 @@ def _costates(sampler: Sampler) -> list[Finding]:
         return []
     found, weak = sampler.continued, _weak_residuals(sampler)
     shares = (sampler.path.breaks[found.far] - sampler.path.breaks[0]) / sampler.span
-    inner = np.append(sampler.stretch, sampler.stretch[-1])[found.far] == sampler.stretch[np.maximum(found.far - 1, 0)]
     findings = []
     for j in range(n):
-        weight = np.where(inner, variation(shares, sampler.fixed_ends[j])[0], 0.0)
+        weight = variation(shares, sampler.fixed_ends[j])[0]
         jumps = np.where(weight > 0, weight * found.jumps[:, j], 0.0)
         residual = _finite(np.abs(np.where(found.kept, weak[:, j], jumps)))
         residual *= sampler.state_extents[j] / sampler.value_size
@@ -128,10 +130,7 @@ def _weak_residuals(sampler: Sampler) -> Array:
 
 
 def _measures(sampler: Sampler) -> tuple[Array, NDArray[np.int64], Array]:
-    """What multipliers of constraints and bounds put on each state (P x n), in which interval, at which share.
-
-    Multipliers at a place belong to the conditions there and are left out.
-    """
+    """What multipliers of constraints and bounds put on each state (P x n), in which interval, at which share."""
     path, n, c = sampler.path, sampler.point.states, sampler.point.constraints
     where = path.program.layout
     degrees = np.diff(where.first)
@@ -151,12 +150,36 @@ def _measures(sampler: Sampler) -> tuple[Array, NDArray[np.int64], Array]:
     gauss = np.array([i.scheme.family is Family.GAUSS for i in path.program.mesh.intervals])
     at_place = np.isin(np.arange(1, sampler.count + 1), where.at_place)
     last = where.first[1:] - 1
-    put[last[at_place & ~gauss]] = 0.0
+    ending = np.flatnonzero(at_place & ~gauss)
+    put[last[ending]] = _before_places(sampler, ending, put[last[ending]])
     extra = np.flatnonzero(gauss & ~at_place)  # a Gauss interval's right node is no point of its own
     put = np.vstack([put, path.bound_multipliers[where.nodes[extra + 1]].reshape(len(extra), n)])
     owner = np.concatenate([owner, extra])
     shares = np.concatenate([shares, (path.breaks[extra + 1] - path.breaks[0]) / sampler.span])
     return put, owner, shares
+
+
+def _before_places(sampler: Sampler, ending: NDArray[np.int64], total: Array) -> Array:
+    """The part of what is put on the states at a place that belongs to the interval which ends there (E x n).
+
+    The rest is an atom, by which the costate jumps at the place (`free_ends` weighs it).  Only a limit has a part: what
+    conditions put at a place, and what the transcription fixes there, is an atom altogether.
+    """
+    path, n = sampler.path, sampler.point.states
+    nodes = ending + 1
+    values, (lower, upper) = path.nodes[nodes], sampler.bounds[:2]
+    near = RESTING * sampler.state_sizes
+    bound = path.bound_multipliers[path.program.layout.nodes[nodes]]
+    given = np.where((values - lower > near) & (upper - values > near), bound, 0.0)
+    total = total - given
+    left = np.zeros((len(ending), n))
+    inner = nodes < sampler.count
+    left[inner] = sampler.of(sampler.costates, nodes[inner], np.zeros(np.count_nonzero(inner)))
+    right = sampler.of(sampler.costates, ending, np.ones(len(ending)))
+    place = np.searchsorted(path.program.layout.at_place, nodes)
+    conditions = sampler.end_slopes[1][: len(path.places) * n].reshape(-1, n)[place]
+    part = total + given + left - right + conditions
+    return np.clip(part, np.minimum(total, 0.0), np.maximum(total, 0.0))
 
 
 def _multipliers(sampler: Sampler) -> list[Finding]:
