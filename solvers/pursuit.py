@@ -34,6 +34,8 @@ FIRST_DEGREE = 4
 MESHES = 24
 GROWTH = 2.5
 """How much larger, in points, one mesh may be than the one before."""
+FEW_ITERATIONS = 200
+"""Iterations within which a solve from a related trajectory must be through: it starts near its end."""
 FLOOR = 1e-9
 """What the minimiser itself leaves open, relative to the size of the value."""
 
@@ -269,10 +271,12 @@ def _begin_from(
     """The first mesh, from a trajectory of a related form of the problem."""
     mesh = mesh or first_mesh(len(pursuit.problem.places) - 1)
     where = layout(pursuit.compiled, mesh)
-    program = _program(pursuit.compiled, mesh, where, related(start, pursuit.compiled, where))
-    z = related(start, pursuit.compiled, where) / program.scale
-    for options in ({"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 1e-3}, {}):
-        minimum = minimise_(program, Start(z), options)
+    z = related(start, pursuit.compiled, where)
+    program = _program(pursuit.compiled, mesh, where, z)
+    z = z / program.scale
+    settings: tuple[dict[str, Any], ...] = ({"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 1e-3}, {})
+    for options in settings:
+        minimum = minimise_(program, Start(z), options | {"ipopt.max_iter": FEW_ITERATIONS})
         if minimum.outcome in SOLVED:
             return program, minimum
         pursuit.end = _end_of(minimum)
@@ -331,7 +335,7 @@ def _next(path: Trajectory, mesh: Mesh, minimise_: _Minimiser) -> tuple[Program,
     program = _program(compiled, mesh, where, carried.z, path.program.scales)
     warm = carried.onto(program)
     for start in (warm, Start(warm.z)):
-        minimum = minimise_(program, start)
+        minimum = minimise_(program, start, {"ipopt.max_iter": FEW_ITERATIONS})
         if minimum.outcome in SOLVED:
             return program, minimum
         end = _end_of(minimum)

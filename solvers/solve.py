@@ -32,6 +32,10 @@ EARLY = {End.INFEASIBLE: Verdict.INFEASIBLE, End.UNBOUNDED: Verdict.NO_OPTIMUM}
 
 SHARE = 0.6
 """Share of the remaining time that the search for switches may take."""
+PATIENCE = 20.0
+"""How much longer than the plain meshes it may take."""
+NEARLY = 100.0
+"""How far from the tolerance, as a factor, plain meshes are given a chance to finish first."""
 
 
 def solve(problem: Problem, watch: Watch | None = None) -> Solution:
@@ -50,11 +54,15 @@ def solve(problem: Problem, watch: Watch | None = None) -> Solution:
 
 def _in_given_form(problem: Problem, watch: Watch | None, deadline: float) -> Pursuit:
     """Plain meshes first; where controls switch, then the switches as unknowns; else plain meshes to the end."""
+    began = time.perf_counter()
     pursuit = pursue(problem, watch, deadline, meshes=3)
+    if pursuit.solved and (pursuit.steps[-1].error or 0.0) <= NEARLY * problem.options.tolerance:
+        pursuit = pursuit if pursuit.end is End.CONVERGED else go_on(pursuit, watch, deadline, 3)
     if not pursuit.solved or pursuit.end in (End.CONVERGED, End.STOPPED, End.TIME):
         return pursuit
     now = time.perf_counter()
-    sharp = sharpen(pursuit, watch, now + SHARE * (deadline - now))
+    room = min(SHARE * (deadline - now), PATIENCE * (now - began) + 1.0)
+    sharp = sharpen(pursuit, watch, now + room)
     if sharp is not None:
         sharp.steps[:0] = pursuit.steps
         sharp.iterations += pursuit.iterations
