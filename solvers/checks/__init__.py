@@ -24,6 +24,7 @@ from solvers.checks import (
 )
 from solvers.checks.sampling import Sampler
 from solvers.problem import Problem
+from solvers.pursuit import FLOOR
 from solvers.solution import Check, Status
 from solvers.trajectory import Trajectory
 
@@ -65,6 +66,7 @@ def run(
         reason = f"The curve cannot be looked at: {error}"
         return tuple(Check(name, Status.FAILED, reason) for name in NAMES)
     tolerance = sampler.tolerance
+    floor = 2 * FLOOR * abs(path.program.value_scale)  # what the minimiser leaves open where the value nearly vanishes
     made: list[Check] = []
 
     def of_second_order() -> Check:
@@ -82,7 +84,7 @@ def run(
         (legendre.NAME, lambda: legendre.check(sampler)),
         (curvature.NAME, of_second_order),
         (convexity.NAME, lambda: convexity.check(original or sampler.problem)),
-        (refinement.NAME, lambda: refinement.check(value_error, size, curve_error, tolerance)),
+        (refinement.NAME, lambda: refinement.check(value_error, size + floor / tolerance, curve_error, tolerance)),
     )
     with np.errstate(all="ignore"):
         for name, one in planned:

@@ -17,6 +17,7 @@ from solvers.checks.sampling import Sampler, mapped
 from solvers.checks.stationarity import complementarity
 from solvers.limits import constants_of, interval_of
 from solvers.solution import Check, Status
+from solvers.structure import SWITCH
 
 Array = NDArray[np.float64]
 
@@ -93,7 +94,10 @@ def _numbers(sampler: Sampler, slopes: Array) -> list[Finding]:
             slope += float(gradient[stretch == place - 1, n + m + 1].sum())
             slope += slopes[places * n + place]
         size = abs(path.parameters[index]) or path.program.scale[where.parameters[index]]
-        figure = _step(path.parameters[index], slope, size, parameter.lower, parameter.upper, sampler.value_size)
+        limits = (parameter.lower, parameter.upper)
+        if parameter.name.startswith(SWITCH + " "):  # the room of a switch is no limit of the user's: nothing holds it
+            limits, size = (-np.inf, np.inf), abs(sampler.span)
+        figure = _step(path.parameters[index], slope, size, *limits, sampler.value_size)
         findings.append((figure, None, parameter.name,
                          f"The functional is stationary in {parameter.name} to {figure:.1e}."))  # fmt: skip
     return findings

@@ -1,10 +1,13 @@
-"""Where a state rests on its limit because a control is held on its own, both limits say the same.
+"""Multipliers that are not unique, chosen anew.
 
-Then their multipliers are not unique: a minimiser that has the control fixed may find any of them, with signs that no
-inequality may have.  Here the limit on the state is dropped along such an arc and its costate found anew from the
-stationarity of the program in that state: continued from where the arc begins (a push of the limit may then remain
-where it ends), or from where it ends.  What comes out are multipliers of the same problem; whether they prove anything
-is for the checks to say, which weigh every sign and every equation as usual.
+Where a state rests on its limit because a control is held on its own, both limits say the same.  Then their
+multipliers are not unique: a minimiser that has the control fixed may find any of them, with signs that no inequality
+may have.  Here the limit on the state is dropped along such an arc and its costate found anew from the stationarity of
+the program in that state: continued from where the arc begins (a push of the limit may then remain where it ends), or
+from where it ends.  What comes out are multipliers of the same problem; whether they prove anything is for the checks
+to say, which weigh every sign and every equation as usual.
+
+The same holds where a control that acts linearly is kept calm while active constraints determine it anyhow.
 
 Reference: Hartl, Sethi, Vickson (1995), SIAM Review 37, section 4, on multipliers of state limits (from memory).
 """
@@ -13,6 +16,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
@@ -23,7 +27,11 @@ from solvers.collocation import Family
 from solvers.limits import quantity_bounds
 from solvers.trajectory import Trajectory
 
+if TYPE_CHECKING:
+    import scipy.sparse as sp
+
 Array = NDArray[np.float64]
+Flags = NDArray[np.bool_]
 Indices = NDArray[np.int64]
 
 RESTING = 1e-6
@@ -87,44 +95,89 @@ def _rows(path: Trajectory, points: Indices, entry: int, end: int, state: int) -
 
 def without_redundancy(path: Trajectory) -> Iterator[Trajectory]:
     """The same curve with other multipliers: those limits dropped, costates continued from either side."""
-    arcs = redundant_arcs(path)
-    if not arcs:
+    arcs, calm = redundant_arcs(path), _calm_points(path)
+    if not arcs and not len(calm):
         return
-    for forwards in (True, False):
-        found = _continued(path, arcs, forwards)
+    for forwards in (True, False) if arcs else (True,):
+        found = _chosen_anew(path, arcs, calm, forwards)
         if found is not None:
             yield found
 
 
-def _continued(path: Trajectory, arcs: list[Arc], forwards: bool) -> Trajectory | None:
-    """Multipliers with the limits dropped; None where they are not determined."""
-    from scipy.sparse.linalg import splu
+def _calm_points(path: Trajectory) -> Indices:
+    """The points where a control is kept calm while constraints that hold it may say the same."""
+    program, where = path.program, path.program.layout
+    stretches = {c.stretch for c in program.compiled.lowered.problem.calm}
+    if not stretches or not program.compiled.point.constraints:
+        return np.empty(0, dtype=np.int64)
+    return np.flatnonzero(np.isin(where.stretch, sorted(stretches)))
 
+
+def _chosen_anew(path: Trajectory, arcs: list[Arc], calm: Indices, forwards: bool) -> Trajectory | None:
+    """Multipliers with the limits dropped; None where they are not determined."""
     program, where = path.program, path.program.layout
     size = abs(program.value_scale)
     z, constants = path.z / program.scale, list(program.compiled.constants)
     gradient = np.asarray(program.functions["grad_f"](z, constants)[1]).ravel()
-    jacobian = program.functions["jac_g"](z, constants)[1].sparse().tocsc()
+    g, slopes = program.functions["jac_g"](z, constants)
+    jacobian = slopes.sparse().tocsc()
     rows = path.row_multipliers * program.row_scale / size
     bounds = path.bound_multipliers * program.scale / size
+    if len(calm):
+        values = np.asarray(g).ravel()
+        active = np.minimum(values - program.row_lower, program.row_upper - values) <= RESTING
+        _without_calm(path, jacobian, gradient + bounds, rows, calm, active)
     for arc in arcs:
         columns = np.append(arc.inside, arc.entry if forwards else arc.exit)
         bounds[columns] = 0.0
         rows[arc.rows] = 0.0
-        try:
-            factors = splu(jacobian[arc.rows][:, columns].T.tocsc())
-        except (RuntimeError, ValueError):  # singular, or not square
+        found = _determined(jacobian[arc.rows][:, columns], -(gradient + jacobian.T @ rows)[columns])
+        if found is None:
             return None
-        rows[arc.rows] = factors.solve(-(gradient + jacobian.T @ rows)[columns])
-    if not np.isfinite(rows).all():
-        return None
+        rows[arc.rows] = found
     pull = -(gradient + jacobian.T @ rows)
-    ends = np.array([arc.exit if forwards else arc.entry for arc in arcs])
+    ends = np.array([arc.exit if forwards else arc.entry for arc in arcs], dtype=np.int64)
     bounds[ends] = pull[ends]
     fixed = program.lower == program.upper
     bounds[fixed] = pull[fixed]
     physical = rows / program.row_scale * size
     weights = np.concatenate([i.scheme.weights for i in program.mesh.intervals])
     defects = physical[: len(where.fractions) * path.nodes.shape[1]].reshape(path.costates.shape)
-    return replace(path, costates=-defects / weights[:, None], row_multipliers=physical,
-                   bound_multipliers=bounds * size / program.scale)  # fmt: skip
+    measures = where.measures * (path.places[where.stretch + 1] - path.places[where.stretch])
+    pushes = physical[program.rows.pointwise : program.rows.rims].reshape(path.multipliers.shape)
+    return replace(path, costates=-defects / weights[:, None], multipliers=pushes / measures[:, None],
+                   row_multipliers=physical, bound_multipliers=bounds * size / program.scale)  # fmt: skip
+
+
+def _determined(matrix: sp.csc_matrix, wanted: Array) -> Array | None:
+    """The multipliers of rows that have wanted effects; None where the matrix is singular or not square."""
+    from scipy.sparse.linalg import splu
+
+    try:
+        found = splu(matrix.T.tocsc()).solve(wanted)
+    except (RuntimeError, ValueError):
+        return None
+    return np.asarray(found) if np.isfinite(found).all() else None
+
+
+def _without_calm(
+    path: Trajectory, jacobian: sp.csc_matrix, push: Array, rows: Array, points: Indices, active: Flags
+) -> None:
+    """Take back what the calming of a control says, and let the active constraints at each point say it instead.
+
+    `rows` is changed in place; `push` is what objective and bounds add to the slope of the Lagrangian.
+    """
+    program, where = path.program, path.program.layout
+    count, controls = program.compiled.point.constraints, where.controls.shape[1]
+    rows[program.rows.rims + len(program.compiled.rims) : program.rows.integrals] = 0.0
+    own = program.rows.pointwise + points[:, None] * count + np.arange(count)
+    rows[own] = 0.0
+    columns = where.controls[points]
+    block = jacobian[:, columns.ravel()].tocsr()[own.ravel()].tocoo()
+    same = block.row // count == block.col // controls
+    effects = np.zeros((len(points), controls, count))
+    row, column = block.row[same], block.col[same]
+    effects[row // count, column % controls, row % count] = block.data[same]
+    effects *= active[own][:, None, :]
+    wanted = -(push + jacobian.T @ rows)[columns]
+    rows[own] = np.einsum("pci,pi->pc", np.linalg.pinv(effects), wanted)
