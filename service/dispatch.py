@@ -1,6 +1,6 @@
 """Brings waiting runs to the engine and their outcomes to the store.
 
-    Dispatcher(store, settings)   start()  close()  capacity()
+    Dispatcher(store, settings, engine)   start()  close()  capacity()
     submit(run, document) -> Run  cancel(id) -> Run | None  delete(id) -> bool    block for a commit: call in a thread
     await wait(id, seconds) -> Run | None  async for event in follow(id, after)   for the event loop
     await understand(document) -> bytes | None                                    the reading, in a worker
@@ -21,13 +21,13 @@ from functools import partial
 from typing import Any
 
 from service.engine.inquiry import Inquiries, answer
-from service.engine.local import LocalEngine
 from service.engine.records import Capacity, Ending, Engine, Job, Outcome
 from service.owner import Owner
 from service.progress import Event, Progress
 from service.run import Figures, Run, State, StoreError
 from service.settings import Settings
 from service.store import Store
+from service.workers import workers
 
 _log = logging.getLogger(__name__)
 
@@ -38,19 +38,13 @@ Write = Callable[[], State | None]
 
 
 class Dispatcher:
-    """The link between store and engine.  `job` is the function of the workers, "module:function"."""
+    """The link between store and engine; with `engine`, what `workers` made is taken over and closed in the end."""
 
-    def __init__(self, store: Store, settings: Settings, *, job: str = "service.jobs:solve") -> None:
+    def __init__(self, store: Store, settings: Settings, engine: Engine | None = None) -> None:
         self._store = store
         self._settings = settings
         self._progress = Progress()
-        self._engine: Engine = LocalEngine(
-            settings.workers,
-            self,
-            job=job,
-            memory=settings.memory_mb * 2**20,
-            cancel_grace=settings.cancel_grace,
-        )
+        self._engine = engine or workers(settings)
         self._inquiries = Inquiries("service.understanding:understand", memory=settings.memory_mb * 2**20)
         self._feeding = threading.RLock()
         self._backlog = True  # runs may be waiting in the store
@@ -66,7 +60,7 @@ class Dispatcher:
         """Take back what an earlier life left, and begin to solve.  Raises DirectoryInUseError, StoreError."""
         self._owner = Owner(self._settings.data)
         self._store.take_back(self._owner.name)
-        self._engine.start()
+        self._engine.start(self)
         self._keeper.start()
 
     def close(self) -> None:

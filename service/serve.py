@@ -1,6 +1,6 @@
 """Runs the application in this process until a signal ends it.
 
-The workers are started first: they load the solver while this process loads the framework.
+The workers are started first: they load the solver while this process loads the database and the framework.
 """
 
 from __future__ import annotations
@@ -8,9 +8,14 @@ from __future__ import annotations
 import gc
 import socket
 from collections.abc import Callable
+from typing import TYPE_CHECKING
 
-from service.services import Services
+from service.engine.records import Engine
 from service.settings import Settings
+from service.workers import workers
+
+if TYPE_CHECKING:
+    from service.services import Services
 
 SHUTDOWN_SECONDS = 3
 KEEP_ALIVE_SECONDS = 30  # with a short one a busy machine closes connections that are about to be used
@@ -26,14 +31,25 @@ def run(settings: Settings, announce: Callable[[str], None]) -> None:
     Raises ListenError, and StoreError where the data directory or the database cannot be used.
     """
     with _listener(settings) as listener:
-        services = Services.start(settings)
+        engine = workers(settings)
+        engine.prepare()
         try:
-            _serve(listener, services, announce)
+            _serve(listener, settings, engine, announce)
         finally:
-            services.close()
+            engine.close()
 
 
-def _serve(listener: socket.socket, services: Services, announce: Callable[[str], None]) -> None:
+def _serve(listener: socket.socket, settings: Settings, engine: Engine, announce: Callable[[str], None]) -> None:
+    from service.services import Services
+
+    services = Services.start(settings, engine=engine)
+    try:
+        _answer(listener, services, announce)
+    finally:
+        services.close()
+
+
+def _answer(listener: socket.socket, services: Services, announce: Callable[[str], None]) -> None:
     import uvicorn
 
     from service.app import create_app

@@ -7,6 +7,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 
 from service.dispatch import Dispatcher
+from service.engine.records import Engine
 from service.metrics import Metrics
 from service.run import StoreFullError
 from service.settings import Settings
@@ -23,10 +24,13 @@ class Services:
     metrics: Metrics
 
     @classmethod
-    def start(cls, settings: Settings, metrics: Metrics | None = None) -> Services:
-        """Open the database and begin to solve; raises what the store and the dispatcher raise."""
+    def start(cls, settings: Settings, metrics: Metrics | None = None, engine: Engine | None = None) -> Services:
+        """Open the database and begin to solve; raises what the store and the dispatcher raise.
+
+        `engine` may be one that is prepared already; from here on it is closed with the services.
+        """
         store = Store(settings.database_url)
-        services = cls(settings, store, Dispatcher(store, settings), metrics or Metrics())
+        services = cls(settings, store, Dispatcher(store, settings, engine), metrics or Metrics())
         services.metrics.watch("runs", "Runs in each state", "state", services._runs)
         services.metrics.watch("slots", "Slots for runs", "kind", services._slots)
         try:

@@ -24,7 +24,7 @@ class Inquiries:
 
     def __init__(self, job: str, *, memory: int) -> None:
         self._memory = memory
-        self._engine = LocalEngine(1, self, job=job, memory=memory)
+        self._engine = LocalEngine(1, job=job, memory=memory)
         self._lock = threading.Lock()
         self._started = False
         self._numbers = itertools.count()
@@ -42,7 +42,7 @@ class Inquiries:
             self._asked[id] = loop, future
             if not self._started:
                 self._started = True
-                self._engine.start()
+                self._engine.start(self)
         self._engine.submit(Job(id, body, head, created=float(number), wall=seconds, memory=self._memory))
         try:
             return await future

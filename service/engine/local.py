@@ -18,12 +18,13 @@ _IDLE_SECONDS = 1.0  # how often a slot without a job looks after its child
 
 
 class LocalEngine:
-    """`slots` children of `job` ("module:function"); what happens goes to `sink`."""
+    """`slots` children of `job` ("module:function")."""
 
-    def __init__(self, slots: int, sink: Sink, *, job: str, memory: int, cancel_grace: float = 0.5) -> None:
-        self._sink = sink
+    def __init__(self, slots: int, *, job: str, memory: int, cancel_grace: float = 0.5) -> None:
+        self._sink: Sink
         self._slots = [Slot(job, memory=memory, cancel_grace=cancel_grace) for _ in range(slots)]
         self._changed = threading.Condition()
+        self._starting = threading.Lock()
         self._queue: list[tuple[int, float, int, Job]] = []
         self._order = itertools.count()
         self._running: dict[str, Slot] = {}
@@ -33,10 +34,16 @@ class LocalEngine:
             for number, slot in enumerate(self._slots)
         ]
 
-    def start(self) -> None:
+    def prepare(self) -> None:
         """Start the threads; each starts its child."""
         for thread in self._threads:
-            thread.start()
+            if thread.ident is None:
+                thread.start()
+
+    def start(self, sink: Sink) -> None:
+        """Take jobs from now on; what happens to them goes to `sink`."""
+        self._sink = sink
+        self.prepare()
 
     def capacity(self) -> Capacity:
         """How much room there is now."""
@@ -89,7 +96,8 @@ class LocalEngine:
 
     def _work(self, slot: Slot) -> None:
         """The life of one thread."""
-        slot.tend()
+        with self._starting:  # one child after the other: so the first one is ready soonest
+            slot.tend()
         while (job := self._next(slot)) is not None:
             try:
                 outcome = slot.run(job, partial(self._sink.progress, job))

@@ -68,8 +68,11 @@ class Sink(Protocol):
 class Engine(Protocol):
     """Solves jobs somewhere.  Holds nothing that must survive: the truth is in the store."""
 
-    def start(self) -> None:
-        """Begin to take jobs; does not wait until children are ready."""
+    def prepare(self) -> None:
+        """Begin to start children and do not wait until they are ready; for who has other things to load meanwhile."""
+
+    def start(self, sink: Sink) -> None:
+        """Begin to take jobs and tell `sink` about them; prepares what is not prepared yet."""
 
     def capacity(self) -> Capacity:
         """How much room there is now."""

@@ -20,8 +20,7 @@ _TICK = 0.05  # seconds between looks at clock and memory
 _READY_SECONDS = 30.0
 _STARTS = 3  # children that may fail before a job begins
 _NEAR = 0.9  # a death above this part of the memory limit is a death of memory
-_IDLE_MEMORY = 100 * 2**20  # a waiting child above this, and well above its own start, is replaced
-_IDLE_GROWTH = 30 * 2**20
+_IDLE_MEMORY = 100 * 2**20  # a waiting child that keeps more for itself is replaced
 
 Report = Callable[[dict[str, Any]], None]
 
@@ -42,7 +41,6 @@ class Slot:
         self._cancelled = threading.Event()
         self._shut = threading.Event()
         self._process: Process | None = None
-        self._fat = _IDLE_MEMORY
 
     @property
     def alive(self) -> bool:
@@ -66,7 +64,7 @@ class Slot:
 
     def tend(self) -> None:
         """Have a fresh child ready, where there is none or it is dead or fat.  For idle moments."""
-        if self._process is not None and (not self._process.alive or self._process.rss > self._fat):
+        if self._process is not None and (not self._process.alive or self._process.own > _IDLE_MEMORY):
             self._end()
         if self._process is None and not self._shut.is_set():
             with contextlib.suppress(ChildGoneError, OSError):  # the next job will say why
@@ -152,7 +150,6 @@ class Slot:
             how = process.bury()
             raise ChildGoneError(f"{how} before it was ready: {process.printed[-1000:]}") from None
         self._process = process
-        self._fat = max(_IDLE_MEMORY, process.rss + _IDLE_GROWTH)
         return process
 
     def _autopsy(self, job: Job, begun: float | None, peak: int) -> Outcome:

@@ -9,6 +9,7 @@ from service.dispatch import Dispatcher
 from service.run import State, new_run
 from service.settings import Settings
 from service.store import Store
+from service.workers import workers
 
 JOBS = Path(__file__).parents[1] / "engine"
 
@@ -18,7 +19,7 @@ def served(tmp_path, monkeypatch):
     monkeypatch.setenv("PYTHONPATH", str(JOBS))
     settings = Settings(data=tmp_path, workers=1)
     store = Store(settings.database_url)
-    dispatcher = Dispatcher(store, settings, job="slot_jobs:act")
+    dispatcher = Dispatcher(store, settings, workers(settings, job="slot_jobs:act"))
     dispatcher.start()
     while not dispatcher.capacity().alive:
         time.sleep(0.01)

@@ -12,6 +12,7 @@ from service.engine.slot import Slot
 from service.run import new_run
 from service.settings import Settings
 from service.store import Store
+from service.workers import workers
 
 ACT = "slot_jobs:act"
 MEGABYTE = 2**20
@@ -62,7 +63,7 @@ def start(settings):
     def begin(*, job=ACT, **changes):
         changed = settings.model_copy(update=changes)
         store = Store(changed.database_url)
-        dispatcher = Dispatcher(store, changed, job=job)
+        dispatcher = Dispatcher(store, changed, workers(changed, job=job))
         dispatcher.start()
         started.append((dispatcher, store))
         return dispatcher, store

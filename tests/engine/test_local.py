@@ -48,9 +48,9 @@ def make_engine(log):
     engines = []
 
     def make(slots, start=True):
-        engines.append(LocalEngine(slots, log, job="slot_jobs:act", memory=300 * MEGABYTE, cancel_grace=0.3))
+        engines.append(LocalEngine(slots, job="slot_jobs:act", memory=300 * MEGABYTE, cancel_grace=0.3))
         if start:
-            engines[-1].start()
+            engines[-1].start(log)
         return engines[-1]
 
     yield make
@@ -66,7 +66,7 @@ def test_the_queue_is_by_priority_then_age(make_engine, log):
     engine = make_engine(1, start=False)
     for id, priority, created in [("young", 0, 2.0), ("old", 0, 1.0), ("urgent", 5, 3.0)]:
         engine.submit(with_place(id, priority, created))
-    engine.start()
+    engine.start(log)
     log.wait_for(lambda: len(log.outcomes) == 3)
     assert log.order() == ["urgent", "old", "young"]
 

@@ -27,7 +27,7 @@ def test_a_sample_is_solved_in_a_worker_that_stays_small(solving, ended):
     assert (result["value"], result["value_unit"]) == (run.value, run.value_unit)
     assert result["reading"]["necessary"]
     process = dispatcher._engine._slots[0]._process
-    assert 20 * MEGABYTE < process.rss < 100 * MEGABYTE
+    assert 20 * MEGABYTE < process.own < 100 * MEGABYTE
 
 
 def test_a_cancel_reaches_the_solver_between_two_iterations(solving, ended, until):

@@ -177,6 +177,6 @@ def test_a_fat_child_is_replaced_when_there_is_time(make_slot, make_job, monkeyp
     first = slot.run(make_job(say="who"), ignore).head["pid"]
     slot.tend()
     assert slot.run(make_job(say="who"), ignore).head["pid"] == first
-    monkeypatch.setattr(slot, "_fat", 1)
+    monkeypatch.setattr("service.engine.slot._IDLE_MEMORY", 1)
     slot.tend()
     assert slot.run(make_job(say="who"), ignore).head["pid"] != first
