@@ -10,6 +10,7 @@ from __future__ import annotations
 import math
 import re
 from collections.abc import Iterable, Mapping
+from functools import cache
 from importlib.metadata import PackageNotFoundError, version
 from typing import Any
 
@@ -66,7 +67,7 @@ def result_document(
         "notes": list(solution.notes),
         "reading": dict(reading),
         "provenance": {
-            "versions": _versions(NUMERICAL_PARTS),
+            "versions": dict(_versions(NUMERICAL_PARTS)),
             "options": {
                 "tolerance": problem.options.tolerance,
                 "time_limit": problem.options.time_limit,
@@ -244,7 +245,9 @@ def _mesh(step: MeshStep, value_unit: Unit) -> dict[str, Any]:
     }
 
 
-def _versions(packages: Iterable[str]) -> dict[str, str]:
+@cache
+def _versions(packages: tuple[str, ...]) -> Mapping[str, str]:
+    """Read once: it takes longer than the rest of the document."""
     found: dict[str, str] = {}
     for package in packages:
         try:

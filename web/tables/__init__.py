@@ -10,7 +10,6 @@ from web.tables.error import TableError
 from web.tables.npz import to_npz
 from web.tables.places import MOST_ROWS
 from web.tables.sampling import Table, table
-from web.tables.xlsx import to_xlsx
 
 __all__ = [
     "FILE_FORMATS",
@@ -35,10 +34,16 @@ class FileFormat:
     write: Callable[[Table], bytes]
 
 
+def _to_xlsx(table: Table) -> bytes:
+    from web.tables.xlsx import to_xlsx  # here, so that a server does not load the package before it is wanted
+
+    return to_xlsx(table)
+
+
 FILE_FORMATS: dict[str, FileFormat] = {
     "csv": FileFormat("CSV", "text/csv; charset=utf-8; header=present", to_csv),
     "json": FileFormat("JSON", "application/json", to_json),
-    "xlsx": FileFormat("XLSX", "application/vnd.openxmlformats-officedocument.spreadsheetml.sheet", to_xlsx),
+    "xlsx": FileFormat("XLSX", "application/vnd.openxmlformats-officedocument.spreadsheetml.sheet", _to_xlsx),
     "npz": FileFormat("NPZ", "application/x-npz", to_npz),
 }
 """By file suffix."""
