@@ -63,6 +63,7 @@ class Pursuit:
     end: End = End.FAILED
     steps: list[MeshStep] = field(default_factory=list)
     paths: list[Trajectory] = field(default_factory=list)
+    estimates: list[refinement.Estimate] = field(default_factory=list)
     nearest: Trajectory | None = None  # the curve that violates least, where none satisfies all conditions
     last: tuple[Program, Minimum] | None = None
     findings: tuple[Finding, ...] = ()
@@ -115,8 +116,7 @@ def _go_on(pursuit: Pursuit, minimise_: _Minimiser, meshes: int) -> None:
     options = pursuit.problem.options
     pursuit.end = End.SETTLED
     for _ in range(meshes):
-        path = pursuit.paths[-1]
-        found = refinement.estimate(path)
+        path, found = pursuit.paths[-1], pursuit.estimates[-1]
         better = refinement.refine(path, found, 0.3 * options.tolerance)
         if better == path.program.mesh:
             better = refinement.finer(better)
@@ -142,6 +142,7 @@ def _add(pursuit: Pursuit, minimise_: _Minimiser, program: Program, minimum: Min
     path = trajectory(program, minimum)
     found = refinement.estimate(path)
     pursuit.paths.append(path)
+    pursuit.estimates.append(found)
     minimise_.record(program, minimum, path.value, found.worst)
     if len(pursuit.paths) > 1:
         _estimate_errors(pursuit, found)
@@ -334,8 +335,8 @@ def _next(path: Trajectory, mesh: Mesh, minimise_: _Minimiser) -> tuple[Program,
     carried = carry(path, mesh, where)
     program = _program(compiled, mesh, where, carried.z, path.program.scales)
     warm = carried.onto(program)
-    for start in (warm, Start(warm.z)):
-        minimum = minimise_(program, start, {"ipopt.max_iter": FEW_ITERATIONS})
+    for start, options in ((warm, {"ipopt.max_iter": FEW_ITERATIONS}), (Start(warm.z), {})):
+        minimum = minimise_(program, start, options)
         if minimum.outcome in SOLVED:
             return program, minimum
         end = _end_of(minimum)

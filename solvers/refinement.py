@@ -29,17 +29,21 @@ SMOOTH = 0.45
 """Least fall per degree, in powers of ten, of the coefficients of a curve that counts as smooth."""
 NARROWEST = 1e-11
 """Least width of an interval, relative to the whole."""
+END_DEGREE = 6
+"""Least degree beside such a cut: beyond it the curve is smooth."""
 END_CUT = 0.12
 """Where an interval is cut whose trouble sits at one of its ends."""
 
 
 @dataclass(frozen=True, slots=True)
 class Estimate:
-    """Per interval: `errors` relative to each quantity's size, `falls` (powers of ten per degree), `bends` (0 to 1)."""
+    """Per interval: `errors` relative to each quantity's size, and the coefficients that tell the `shape` of the worst
+    quantity and of the one that shows best where the curve `bends`.
+    """
 
     errors: Array
-    falls: Array
-    bends: Array
+    shapes: tuple[Array, ...]
+    bends: tuple[Array, ...]
 
     @property
     def worst(self) -> float:
@@ -57,32 +61,29 @@ def estimate(path: Trajectory) -> Estimate:
     loose = linear_controls(path.program.compiled)
     calm = {(c.stretch, lowered.controls.index((c.name, c.order))) for c in lowered.problem.calm}
     mesh = path.program.mesh
-    span = path.breaks[-1] - path.breaks[0]
-    widths = np.diff(path.breaks)
-    state_sizes = _sizes(path.states)
-    control_sizes = _sizes(path.controls)
-    errors, falls, bends = (np.zeros(len(mesh.intervals)) for _ in range(3))
+    weights = np.minimum(1.0, np.diff(path.breaks) / (path.breaks[-1] - path.breaks[0]))
+    state_sizes, control_sizes = _sizes(path.states), _sizes(path.controls)
+    errors = np.zeros(len(mesh.intervals))
+    shapes, bends = [], []
     for k, (states, controls) in enumerate(zip(path.state_modes(), path.control_modes(), strict=True)):
-        weight = min(1.0, widths[k] / span)
         columns = states / state_sizes
         error, worst = _tail(columns)
-        falls[k], bends[k] = _shape(columns[:, worst]) if columns.shape[1] else (np.inf, 0.5)
-        scaled = controls / control_sizes * weight
+        shape = bend = columns[:, worst] if columns.shape[1] else np.zeros(1)
+        scaled = controls / control_sizes * weights[k]
         kept = [index for index in loose if (mesh.intervals[k].stretch, index) in calm]
-        scaled[:, [index for index in loose if index not in kept]] = 0.0
         if kept:
-            calm_error, _ = _tail(scaled[: (len(scaled) + 1) // 2, kept])
-            error = max(error, calm_error)
-            scaled[:, kept] = 0.0
+            error = max(error, _tail(scaled[: (len(scaled) + 1) // 2, kept])[0])
+        scaled[:, loose] = 0.0
         control_error, control_worst = _tail(scaled)
+        if scaled.shape[1]:
+            bend = scaled[:, control_worst]
         if control_error > error:
-            error = control_error
-            falls[k], bends[k] = _shape(scaled[:, control_worst])
-        elif scaled.shape[1]:
-            bends[k] = _shape(scaled[:, control_worst])[1]
+            error, shape = control_error, bend
         errors[k] = error
+        shapes.append(shape)
+        bends.append(bend)
     _add_excess(path, errors)
-    return Estimate(errors, falls, bends)
+    return Estimate(errors, tuple(shapes), tuple(bends))
 
 
 BETWEEN = np.linspace(-1.0, 1.0, 15)
@@ -144,16 +145,22 @@ def _tail(columns: Array) -> tuple[float, int]:
     return float(last[worst]), worst
 
 
-def _shape(modes: Array) -> tuple[float, float]:
-    """How fast coefficients fall, and where in the interval (0 to 1) the function bends most."""
-    envelope = np.maximum.accumulate(np.abs(modes)[::-1])[::-1]
-    envelope = np.maximum(envelope, 1e-300)
-    degrees = np.arange(1, len(envelope))
-    fall = -float(np.polyfit(degrees, np.log10(envelope[1:]), 1)[0]) if len(degrees) > 1 else 0.0
-    grid = np.linspace(-1.0, 1.0, 41)
+def _fall(modes: Array) -> float:
+    """How fast coefficients fall, in powers of ten per degree: the slope of a line through their envelope."""
+    envelope = np.log10(np.maximum(np.maximum.accumulate(np.abs(modes)[::-1])[::-1], 1e-300))[1:]
+    if len(envelope) < 2:
+        return 0.0
+    offsets = np.arange(len(envelope)) - (len(envelope) - 1) / 2
+    return -float(offsets @ envelope / (offsets @ offsets))
+
+
+def _bend(modes: Array) -> float:
+    """Where in the interval (0 to 1) the function bends most."""
     order = 2 if len(modes) > 3 else 1
-    bend = np.abs(legendre.legval(grid, legendre.legder(modes, order))) if len(modes) > order else np.ones(41)
-    return fall, float((grid[int(np.argmax(bend))] + 1) / 2)
+    if len(modes) <= order:
+        return 0.5
+    grid = np.linspace(-1.0, 1.0, 41)
+    return float((grid[int(np.argmax(np.abs(legendre.legval(grid, legendre.legder(modes, order)))))] + 1) / 2)
 
 
 def refine(path: Trajectory, found: Estimate, tolerance: float) -> Mesh:
@@ -163,17 +170,17 @@ def refine(path: Trajectory, found: Estimate, tolerance: float) -> Mesh:
     pieces: list[Interval] = []
     for k, old in enumerate(mesh.intervals):
         width = abs(path.breaks[k + 1] - path.breaks[k]) / span
-        pieces.extend(_replace(old, found, k, tolerance, width, len(mesh.intervals)))
+        pieces.extend(_replace(old, found, k, tolerance, width))
     return Mesh(tuple(pieces))
 
 
-def _replace(old: Interval, found: Estimate, k: int, tolerance: float, width: float, count: int) -> Iterator[Interval]:
+def _replace(old: Interval, found: Estimate, k: int, tolerance: float, width: float) -> Iterator[Interval]:
     family, degree = old.scheme.family, old.scheme.degree
     start, end = old.start, old.start + old.width
     if found.errors[k] <= tolerance:
         yield old
         return
-    fall = max(found.falls[k], 1e-3)
+    fall = max(_fall(found.shapes[k]), 1e-3)
     missing = np.log10(found.errors[k] / tolerance)
     wanted = degree + max(1, int(np.ceil(missing / fall)))
     if fall >= SMOOTH and wanted <= HIGHEST_DEGREE:
@@ -185,7 +192,7 @@ def _replace(old: Interval, found: Estimate, k: int, tolerance: float, width: fl
     if fall >= SMOOTH:  # smooth but far from resolved: halves of a higher degree
         cuts = [0.5]
     else:
-        bend = found.bends[k]
+        bend = _bend(found.bends[k])
         if bend < END_CUT:
             cuts = [END_CUT]
         elif bend > 1 - END_CUT:
@@ -193,10 +200,11 @@ def _replace(old: Interval, found: Estimate, k: int, tolerance: float, width: fl
         else:
             cuts = [max(bend - 0.15, bend / 2), min(bend + 0.15, (1 + bend) / 2)]
     edges = [start, *(start + cut * old.width for cut in cuts), end]
-    smooth_degree = max(degree, 5) if fall >= SMOOTH else degree
+    at_end = len(cuts) == 1 and fall < SMOOTH
+    degree = max(degree, END_DEGREE if at_end else 5) if at_end or fall >= SMOOTH else degree
     for left, right in pairwise(edges):
         touching = (left == start and old.start == 0.0) or (right == end)
-        yield interval(old.stretch, left, right, family if touching else Family.RADAU, smooth_degree)
+        yield interval(old.stretch, left, right, family if touching else Family.RADAU, degree)
 
 
 def finer(mesh: Mesh) -> Mesh:

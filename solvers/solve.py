@@ -34,7 +34,7 @@ SHARE = 0.6
 """Share of the remaining time that the search for switches may take."""
 PATIENCE = 20.0
 """How much longer than the plain meshes it may take."""
-NEARLY = 100.0
+NEARLY = 30.0
 """How far from the tolerance, as a factor, plain meshes are given a chance to finish first."""
 
 
