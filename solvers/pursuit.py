@@ -36,6 +36,8 @@ GROWTH = 2.5
 """How much larger, in points, one mesh may be than the one before."""
 FEW_ITERATIONS = 200
 """Iterations within which a solve from a related trajectory must be through: it starts near its end."""
+LEAST_GAIN = 0.05
+"""How much of the last change of the value counts as its error at the least, however much the mesh has improved."""
 FLOOR = 1e-9
 """What the minimiser itself leaves open, relative to the size of the value."""
 
@@ -354,7 +356,7 @@ def _estimate_errors(pursuit: Pursuit, found: refinement.Estimate) -> None:
     """
     now, before = pursuit.paths[-1], pursuit.paths[-2]
     last = pursuit.steps[-2].error or 0.0
-    gain = float(np.clip(found.worst / last, 1e-2, 1.0)) if last > 0 else 1.0
+    gain = float(np.clip(found.worst / last, LEAST_GAIN, 1.0)) if last > 0 else 1.0
     size = max(abs(now.value), abs(now.program.value_scale))
     change = abs(now.value - before.value)
     pursuit.value_error = 2 * gain * change + size * found.worst**2 + FLOOR * size
