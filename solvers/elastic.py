@@ -201,5 +201,4 @@ def _place_of_variable(program: Program, index: int, z: Array) -> float | None:
 def _points(program: Program, z: Array) -> Array:
     where = program.layout
     places = z[where.places] * program.scale[where.places]
-    starts, ends = places[where.stretch], places[where.stretch + 1]
-    return starts + where.fractions * (ends - starts)
+    return where.points(places)

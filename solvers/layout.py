@@ -40,6 +40,14 @@ class Layout:
     stretch: Indices
     at_place: Indices
 
+    def lengths(self, places: Array) -> Array:
+        """The length of each point's stretch (M), from the values of the places."""
+        return np.asarray(places[self.stretch + 1] - places[self.stretch])
+
+    def points(self, places: Array) -> Array:
+        """Where the points are (M), from the values of the places."""
+        return np.asarray(places[self.stretch] + self.fractions * self.lengths(places))
+
 
 @dataclass(frozen=True, slots=True)
 class Rows:

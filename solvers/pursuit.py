@@ -274,7 +274,7 @@ def _begin_from(
     """The first mesh, from a trajectory of a related form of the problem."""
     mesh = mesh or first_mesh(len(pursuit.problem.places) - 1)
     where = layout(pursuit.compiled, mesh)
-    z = related(start, pursuit.compiled, where)
+    z = related(start, pursuit.compiled, mesh, where)
     program = _program(pursuit.compiled, mesh, where, z)
     z = z / program.scale
     settings: tuple[dict[str, Any], ...] = ({"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 1e-3}, {})

@@ -43,9 +43,8 @@ def sketch(compiled: Compiled, mesh: Mesh, where: Layout, places: Array, paramet
     """All variables (SI) but the integrals, which stay zero."""
     lowered = compiled.lowered
     problem = lowered.problem
-    starts, ends = places[where.stretch], places[where.stretch + 1]
     nodes = mesh.breaks(places)
-    grid, back = np.unique(np.concatenate([nodes, starts + where.fractions * (ends - starts)]), return_inverse=True)
+    grid, back = np.unique(np.concatenate([nodes, where.points(places)]), return_inverse=True)
     z = np.zeros(where.size)
     z[where.places], z[where.parameters] = places, parameters
     known = _known_values(compiled)

@@ -139,9 +139,7 @@ def _runs(labels: Indices) -> list[tuple[int, int]]:
 def _clean_jump(path: Trajectory, signal: Signal, inside: slice, low: float, high: float, side: int) -> float:
     """Where a clean jump from one limit to the other has the same integral between `low` and `high`."""
     where = path.program.layout
-    stretch = where.stretch[inside]
-    lengths = path.places[stretch + 1] - path.places[stretch]
-    total = float((where.measures[inside] * lengths) @ signal.values[inside])
+    total = float((where.measures * where.lengths(path.places))[inside] @ signal.values[inside])
     first, second = (signal.lower, signal.upper) if side < 0 else (signal.upper, signal.lower)
     return float(np.clip((total - second * high + first * low) / (first - second), low, high))
 

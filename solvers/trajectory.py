@@ -84,7 +84,6 @@ def trajectory(program: Program, minimum: Minimum) -> Trajectory:
     where, scale = program.layout, program.scale
     z = minimum.z * scale
     places = z[where.places]
-    starts, ends = places[where.stretch], places[where.stretch + 1]
     point = program.compiled.point
     count = len(where.fractions)
     sign_and_size = abs(program.value_scale)
@@ -100,12 +99,12 @@ def trajectory(program: Program, minimum: Minimum) -> Trajectory:
         places=places,
         parameters=z[where.parameters],
         breaks=program.mesh.breaks(places),
-        points=starts + where.fractions * (ends - starts),
+        points=where.points(places),
         nodes=z[where.nodes],
         states=z[where.inner],
         controls=z[where.controls],
         costates=-defects / weights[:, None],
-        multipliers=constraints / (where.measures * (ends - starts))[:, None],
+        multipliers=constraints / (where.measures * where.lengths(places))[:, None],
         bound_multipliers=bounds * sign_and_size / scale,
         row_multipliers=rows,
     )
@@ -180,12 +179,8 @@ def carry(path: Trajectory, mesh: Mesh, where: Layout) -> Carried:
     z = np.zeros(where.size)
     z[where.places], z[where.parameters] = path.places, path.parameters
     z[where.integrals] = path.z[old.integrals]
-    starts, ends = path.places[where.stretch], path.places[where.stretch + 1]
-    points = starts + where.fractions * (ends - starts)
-    breaks = mesh.breaks(path.places)
-    z[where.nodes] = _sample(path.breaks, path.state_modes(), breaks)
-    z[where.inner] = _sample(path.breaks, path.state_modes(), points)
-    z[where.controls] = _sample(path.breaks, path.control_modes(), points)
+    points = where.points(path.places)
+    _draw(z, path, where, mesh.breaks(path.places), points)
 
     rows = np.zeros(order.count)
     weights = np.concatenate([i.scheme.weights for i in mesh.intervals])
@@ -193,7 +188,7 @@ def carry(path: Trajectory, mesh: Mesh, where: Layout) -> Carried:
     rows[: order.ends] = (-costates * weights[:, None]).ravel()
     gauss = [k for k, i in enumerate(mesh.intervals) if i.scheme.family is Family.GAUSS]
     rows[order.ends : order.pointwise] = costates[where.first[np.array(gauss, int) + 1] - 1].ravel()
-    measures = where.measures * (ends - starts)
+    measures = where.measures * where.lengths(path.places)
     density = _sample(path.breaks, _modes(source, path.multipliers, None), points)
     rows[order.pointwise : order.rims] = (density * measures[:, None]).ravel()
     if order.integrals - order.rims == source.rows.integrals - source.rows.rims:
@@ -202,12 +197,19 @@ def carry(path: Trajectory, mesh: Mesh, where: Layout) -> Carried:
 
     bounds = np.zeros(where.size)
     pushes = np.where(source.lower == source.upper, 0.0, path.bound_multipliers)  # what fixes one value stays there
-    old_measures = old.measures * (path.places[old.stretch + 1] - path.places[old.stretch])
+    old_measures = old.measures * old.lengths(path.places)
     nearest = np.searchsorted((path.points[1:] + path.points[:-1]) / 2, points)  # multipliers of bounds may jump
     for new, before in ((where.inner, old.inner), (where.controls, old.controls)):
         bounds[new] = (pushes[before] / old_measures[:, None])[nearest] * measures[:, None]
     bounds[where.parameters] = pushes[old.parameters]
     return Carried(z, bounds, rows)
+
+
+def _draw(z: Array, path: Trajectory, where: Layout, breaks: Array, points: Array) -> None:
+    """Put the curve of a path into the variables of another layout."""
+    z[where.nodes] = _sample(path.breaks, path.state_modes(), breaks)
+    z[where.inner] = _sample(path.breaks, path.state_modes(), points)
+    z[where.controls] = _sample(path.breaks, path.control_modes(), points)
 
 
 def _sample(breaks: Array, modes: list[Array], places: Array) -> Array:
@@ -240,7 +242,7 @@ def _fractions(path: Trajectory) -> tuple[Array, Array]:
     return path.program.mesh.breaks(places), where.stretch + where.fractions
 
 
-def related(path: Trajectory, compiled: Compiled, where: Layout) -> Array:
+def related(path: Trajectory, compiled: Compiled, mesh: Mesh, where: Layout) -> Array:
     """All variables (SI) of a layout of a related problem: other places or parameters, the same unknowns."""
     own = path.program.compiled.lowered.problem
     given = {p.name: float(v) for p, v in zip(own.parameters, path.parameters, strict=True)}
@@ -253,19 +255,6 @@ def related(path: Trajectory, compiled: Compiled, where: Layout) -> Array:
         if index not in where.parameters:
             z[index] = number(place.tree, constants)
     places = z[where.places]
-    starts, ends = places[where.stretch], places[where.stretch + 1]
-    points = starts + where.fractions * (ends - starts)
-    first = where.first[:-1]
-    widths = np.add.reduceat(where.measures, first)
-    nodes = np.append(starts[first] + (ends - starts)[first] * _left_ends(where, widths), places[-1])
-    z[where.nodes] = _sample(path.breaks, path.state_modes(), nodes)
-    z[where.inner] = _sample(path.breaks, path.state_modes(), points)
-    z[where.controls] = _sample(path.breaks, path.control_modes(), points)
+    _draw(z, path, where, mesh.breaks(places), where.points(places))
     z[where.integrals] = path.z[path.program.layout.integrals]
     return z
-
-
-def _left_ends(where: Layout, widths: Array) -> Array:
-    """Left ends of the intervals as fractions of their stretches."""
-    ends = np.cumsum(widths)
-    return ends - widths - where.stretch[where.first[:-1]]

@@ -51,10 +51,6 @@ class Program:
     end_gather: Indices
     functions: dict[str, Any]  # f, g, grad_f, jac_g, hess_lag as CasADi functions
 
-    def physical(self, z: Array) -> Array:
-        """The variables in SI."""
-        return z * self.scale
-
 
 def transcribe(compiled: Compiled, mesh: Mesh, scales: Scales, row_sizes: RowSizes) -> Program:
     """Put a compiled problem on a mesh."""

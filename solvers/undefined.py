@@ -23,8 +23,7 @@ def undefined_places(compiled: Compiled, where: Layout, z: Array) -> tuple[Findi
     """The sub-expressions that are not finite although their parts are, on values (SI) of a mesh."""
     lowered = compiled.lowered
     places = z[where.places]
-    starts, ends = places[where.stretch], places[where.stretch + 1]
-    points = starts + where.fractions * (ends - starts)
+    points = where.points(places)
     values: dict[tuple[str, int], Array] = {(lowered.problem.independent, 0): points}
     values |= {(name, 0): np.full_like(points, value) for name, value in constants_of(compiled).items()}
     for parameter, index in zip(lowered.problem.parameters, where.parameters, strict=True):

@@ -169,7 +169,7 @@ def test_the_same_problem_is_related_to_itself_by_the_identity(carried_case):
     problem, mesh = carried_case
     path, _ = arbitrary(problem, mesh)
     functions = path.program.compiled
-    np.testing.assert_allclose(related(path, functions, path.program.layout), path.z, rtol=1e-9, atol=1e-9)
+    np.testing.assert_allclose(related(path, functions, path.program.mesh, path.program.layout), path.z, rtol=1e-9, atol=1e-9)
 
 
 def test_nothing_is_lost_on_a_finer_mesh(carried_case):
@@ -210,7 +210,7 @@ def test_related_fills_new_parameters_from_their_guesses_and_moves_places():
     functions = compiled(other)
     mesh = uniform(2, 3, 4)
     where = layout(functions, mesh)
-    z = related(path, functions, where)
+    z = related(path, functions, mesh, where)
     assert z[where.places] == pytest.approx([0, 0.4, 1])
     breaks = mesh.breaks(z[where.places])
     np.testing.assert_allclose(z[where.nodes[:, 0]], curve(path).evaluate("x", breaks), atol=1e-12)
