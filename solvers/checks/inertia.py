@@ -100,6 +100,15 @@ def second_order(sampler: Sampler) -> Second:
                   long, border)  # fmt: skip
 
 
+def hessian_of_program(sampler: Sampler) -> sp.csc_matrix:
+    """The second derivatives of the program's own Lagrangian, whose quadrature is at the collocation points."""
+    path, program = sampler.path, sampler.path.program
+    multipliers = path.row_multipliers * program.row_scale / abs(program.value_scale)
+    upper = _matrix(program.functions["hess_lag"](path.z / program.scale, list(program.compiled.constants), 1.0,
+                                                  multipliers))  # fmt: skip
+    return (upper + sp.triu(upper, 1).T).tocsc()
+
+
 def _pushed_throughout(sampler: Sampler, resting: Flags, bounds: Array, least: Array) -> Flags:
     """Controls that rest on one bound all through an interval that pushes on the whole: a switch may touch its end."""
     where, values = sampler.path.program.layout, sampler.path.controls
@@ -143,7 +152,12 @@ def count_negative(
     solve, negative = _factorized(band)
     if solve is None:
         return None
-    rest = corner - side.T @ solve(side) if side.shape[1] else corner  # Schur complement of the band
+    moved = np.empty_like(side)
+    for column in range(side.shape[1]):  # one by one: all at once could take long beyond the deadline
+        if time.perf_counter() > deadline:
+            raise TimeoutError
+        moved[:, column] = solve(side[:, column])
+    rest = corner - side.T @ moved  # Schur complement of the band
     negative += int((np.linalg.eigvalsh((rest + rest.T) / 2) < 0).sum()) - coupling.shape[0]
     if negative <= 0 or shift < 0:  # only a count that stands against the margin needs its direction
         return Count(max(negative, 0), None)

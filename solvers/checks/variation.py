@@ -12,7 +12,7 @@ import scipy.sparse as sp
 from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
-from solvers.checks.sampling import HALF_WEIGHTS, HALVES, Sampler, mapped
+from solvers.checks.sampling import HALF_WEIGHTS, HALVES, Sample, Sampler, mapped
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]
@@ -25,19 +25,20 @@ def second_variation(sampler: Sampler) -> tuple[sp.csc_matrix, sp.csc_matrix]:
     mean square is taken.
     """
     program, where = sampler.path.program, sampler.path.program.layout
-    bends, sizes = _bends(sampler), _sizes(sampler)
     rows, columns, forms, norms = [], [], [], []
     schemes = {id(i.scheme): i.scheme for i in program.mesh.intervals}
     owners = np.array([id(i.scheme) for i in program.mesh.intervals])
     for key, scheme in schemes.items():
         members = np.flatnonzero(owners == key)
-        trial = _trial(sampler, scheme.state_modes, scheme.control_modes)
-        local = _local(sampler, members, scheme.degree)
-        block = (len(members), local.shape[1], local.shape[1])
-        rows.append(np.broadcast_to(local[:, :, None], block).ravel())
-        columns.append(np.broadcast_to(local[:, None, :], block).ravel())
-        forms.append(_condensed(trial, bends[members]).ravel())
-        norms.append(_condensed(trial, sizes[members]).ravel())
+        local, weights = grid_for(scheme.degree)
+        sample = _sample(sampler, members, local)
+        trial = _trial(sampler, scheme.state_modes, scheme.control_modes, local)
+        own = _local(sampler, members, scheme.degree)
+        block = (len(members), own.shape[1], own.shape[1])
+        rows.append(np.broadcast_to(own[:, :, None], block).ravel())
+        columns.append(np.broadcast_to(own[:, None, :], block).ravel())
+        forms.append(_condensed(trial, _bends(sampler, sample, weights)).ravel())
+        norms.append(_condensed(trial, _sizes(sampler, members, weights)).ravel())
     row, column = np.concatenate(rows), np.concatenate(columns)
     scale = program.scale[row] * program.scale[column] / abs(program.value_scale)
     shape = (where.size, where.size)
@@ -48,34 +49,54 @@ def second_variation(sampler: Sampler) -> tuple[sp.csc_matrix, sp.csc_matrix]:
     return (hessian + _at_places(sampler)).tocsc(), (metric + sp.diags(numbers)).tocsc()
 
 
-def _bends(sampler: Sampler) -> Array:
-    """Second derivatives of the weighed outputs by the inputs, times the quadrature weights (N x Q x I x I)."""
-    sample, point = sampler.halves, sampler.point
-    numbers = mapped(point.hessian, sample.v, sample.d, sampler.weights(sample))
-    numbers = numbers * (np.tile(HALF_WEIGHTS, sampler.count) * sampler.width[sample.interval])[:, None]
+def grid_for(degree: int) -> tuple[Array, Array]:
+    """Gauss points of both halves of an interval and their weights: so many that no control of the degree is zero at
+    all of them, since it could then wiggle unseen."""
+    if len(HALVES) > degree:
+        return HALVES, HALF_WEIGHTS
+    nodes, weights = legendre.leggauss(degree // 2 + 1)
+    return np.concatenate([(nodes + 1) / 4, (nodes + 3) / 4]), np.concatenate([weights, weights]) / 4
+
+
+def _sample(sampler: Sampler, members: Indices, local: Array) -> tuple[Sample, Array]:
+    """The curve on a grid of some intervals, with what each output counts there."""
+    if local is HALVES:
+        kept = (members[:, None] * len(local) + np.arange(len(local))).ravel()
+        whole = sampler.halves
+        parts = (whole.interval, whole.local, whole.places, whole.v, whole.d, whole.measure)
+        return Sample(*(part[kept] for part in parts)), sampler.weights(whole)[kept]
+    sample = sampler.sample(np.repeat(members, len(local)), np.tile(local, len(members)))
+    return sample, sampler.weights(sample)
+
+
+def _bends(sampler: Sampler, sampled: tuple[Sample, Array], weights: Array) -> Array:
+    """Second derivatives of the weighed outputs by the inputs, times the quadrature weights (G x Q x I x I)."""
+    (sample, counts), point = sampled, sampler.point
+    numbers = mapped(point.hessian, sample.v, sample.d, counts)
+    numbers = numbers * (np.resize(weights, len(sample.local)) * sampler.width[sample.interval])[:, None]
     bends = np.zeros((len(sample.local), point.inputs, point.inputs))
     for entry, (row, column) in enumerate(zip(point.hessian_rows, point.hessian_columns, strict=True)):
         bends[:, row, column] = bends[:, column, row] = numbers[:, entry]
-    return bends.reshape(sampler.count, len(HALVES), point.inputs, point.inputs)
+    return bends.reshape(-1, len(weights), point.inputs, point.inputs)
 
 
-def _sizes(sampler: Sampler) -> Array:
+def _sizes(sampler: Sampler, members: Indices, weights: Array) -> Array:
     """The same for the sum of squares of the states relative to their sizes."""
     n, m = sampler.point.states, sampler.point.controls
     kind = slice(0, n) if n else slice(n, n + m)
     inverse = np.zeros(sampler.point.inputs)
     inverse[kind] = 1 / sampler.input_sizes[kind] ** 2
-    share = np.abs(sampler.halves.measure / sampler.span).reshape(sampler.count, -1)
+    share = np.abs(sampler.length[members, None] * weights / sampler.span)
     return np.asarray(share[:, :, None, None] * np.diag(inverse) * sampler.value_size)
 
 
-def _trial(sampler: Sampler, state_modes: Array, control_modes: Array) -> Array:
-    """The inputs at the places of the grid from an interval's own variables (Q x I x D)."""
+def _trial(sampler: Sampler, state_modes: Array, control_modes: Array, local: Array) -> Array:
+    """The inputs at local places from an interval's own variables (Q x I x D)."""
     n, m, rest = sampler.point.states, sampler.point.controls, 2 + len(sampler.problem.parameters)
     degree = len(control_modes)
-    states = legendre.legvander(2 * HALVES - 1, degree) @ state_modes
-    controls = legendre.legvander(2 * HALVES - 1, degree - 1) @ control_modes
-    trial = np.zeros((len(HALVES), n + m + rest, (degree + 1) * n + degree * m + rest))
+    states = legendre.legvander(2 * local - 1, degree) @ state_modes
+    controls = legendre.legvander(2 * local - 1, degree - 1) @ control_modes
+    trial = np.zeros((len(local), n + m + rest, (degree + 1) * n + degree * m + rest))
     for i in range(n):
         trial[:, i, i : (degree + 1) * n : n] = states
     for i in range(m):

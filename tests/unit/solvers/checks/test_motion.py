@@ -83,3 +83,19 @@ def test_the_control_is_taken_as_clipped(solved, examine):
     assert examine(motion.check, path).status is Status.PASSED
     check = examine(motion.check, replace(path, controls=path.controls * 1.5))
     assert check.status is Status.FAILED
+
+
+def test_dynamics_that_blow_up_small_changes_are_looked_at_along_the_curve(sketched, examine):
+    """Fifty e-foldings: integrated anew, rounding alone misses the end; a rate that is off by little is found out."""
+    unstable = {
+        "independent": {"name": "t", "from": 0, "to": 1},
+        "unknowns": {"x": {}, "u": {}},
+        "dynamics": ["x' = 200*(x - t) + u"],
+        "functional": {"seek": "minimum", "integrand": "u^2"},
+        "endpoints": ["x(0) = 0"],
+    }
+    check = examine(motion.check, sketched(unstable, [lambda t: t], [lambda t: 1 + 1e-11 * t], intervals=2))
+    assert check.status is Status.PASSED
+    assert "blow up small changes" in check.sentence
+    check = examine(motion.check, sketched(unstable, [lambda t: t], [lambda t: 1 + 1e-3 * t], intervals=2))
+    assert check.status is Status.FAILED
