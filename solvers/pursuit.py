@@ -223,10 +223,14 @@ class _Minimiser:
 
 
 def first_mesh(stretches: int, count: int = FIRST_INTERVALS) -> Mesh:
-    """A coarse mesh; the last interval has Gauss points, so that nothing is evaluated at either end of the curve."""
+    """A coarse mesh; the outermost intervals have Gauss points: nothing is evaluated at the ends, and none is favoured."""
     mesh = uniform(stretches, max(count // stretches, 2) if stretches > 1 else count, FIRST_DEGREE)
-    last = mesh.intervals[-1]
-    return Mesh((*mesh.intervals[:-1], interval(last.stretch, last.start, 1.0, Family.GAUSS, FIRST_DEGREE)))
+    first, *inner, last = mesh.intervals
+    return Mesh((
+        interval(first.stretch, 0.0, first.width, Family.GAUSS, FIRST_DEGREE),
+        *inner,
+        interval(last.stretch, last.start, 1.0, Family.GAUSS, FIRST_DEGREE),
+    ))  # fmt: skip
 
 
 SOLVED = (Outcome.SOLVED, Outcome.ACCEPTABLE)
