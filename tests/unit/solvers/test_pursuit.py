@@ -54,8 +54,8 @@ def test_the_first_mesh_touches_neither_end():
     for stretches in (1, 2, 5):
         mesh = first_mesh(stretches)
         assert mesh.stretches == stretches
-        assert mesh.intervals[-1].scheme.family is Family.GAUSS
-        assert {piece.scheme.family for piece in mesh.intervals[:-1]} == {Family.RADAU}
+        assert mesh.intervals[0].scheme.family is mesh.intervals[-1].scheme.family is Family.GAUSS
+        assert {piece.scheme.family for piece in mesh.intervals[1:-1]} <= {Family.RADAU}
         assert mesh.degrees() == (FIRST_DEGREE, FIRST_DEGREE)
 
 
