@@ -223,7 +223,7 @@ class _Minimiser:
 
 
 def first_mesh(stretches: int, count: int = FIRST_INTERVALS) -> Mesh:
-    """A coarse mesh; its outermost intervals have Gauss points: nothing is evaluated at an end, and none is favoured."""
+    """A coarse mesh; its outermost intervals have Gauss points: no end is touched, none is favoured."""
     mesh = uniform(stretches, max(count // stretches, 2) if stretches > 1 else count, FIRST_DEGREE)
     first, *inner, last = mesh.intervals
     return Mesh((
