@@ -20,7 +20,8 @@ from solvers.ipopt import Iterate, Minimum, Outcome, Start, minimise
 from solvers.layout import Layout, layout
 from solvers.lowering import lower
 from solvers.mesh import Mesh, interval, uniform
-from solvers.problem import Problem
+from solvers.newton import stationary_point
+from solvers.problem import Problem, Seek
 from solvers.scaling import Scales, find_row_sizes, find_scales
 from solvers.solution import Finding, MeshStep, Progress, Watch
 from solvers.trajectory import Trajectory, carry, distance, related, trajectory
@@ -158,6 +159,11 @@ class _Minimiser:
         self.stopped = False
 
     def __call__(self, program: Program, start: Start, options: dict[str, Any] | None = None) -> Minimum:
+        if self.pursuit.problem.seek is Seek.STATIONARY:
+            minimum = stationary_point(program, start, self._hear(program))
+            self.pursuit.last = (program, minimum)
+            if minimum.outcome is not Outcome.FAILED:
+                return minimum
         left = self.deadline - time.perf_counter()
         minimum = minimise(program, start, time_limit=left, watch=self._hear(program), options=options)
         self.pursuit.last = (program, minimum)
