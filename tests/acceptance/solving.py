@@ -4,7 +4,8 @@ from __future__ import annotations
 
 import multiprocessing
 import time
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from math import inf
 from multiprocessing.connection import Connection
 from pathlib import Path
 
@@ -30,11 +31,13 @@ class Outcome:
     trouble: str = ""
 
 
-def solve_document(document: Path, figures: tuple[Figure, ...] = (), seconds: float = 120.0) -> Outcome:
-    """Solve in a process of its own; end it after `seconds`."""
+def solve_document(
+    document: Path, figures: tuple[Figure, ...] = (), seconds: float = 240.0, longest: float = inf
+) -> Outcome:
+    """Solve in a process of its own; end it after `seconds`.  `longest` bounds the document's own time limit."""
     began = time.perf_counter()
     receiver, sender = PROCESSES.Pipe(duplex=False)
-    child = PROCESSES.Process(target=_send_outcome, args=(sender, document, figures), daemon=True)
+    child = PROCESSES.Process(target=_send_outcome, args=(sender, document, figures, longest), daemon=True)
     child.start()
     sender.close()
     try:
@@ -50,9 +53,9 @@ def solve_document(document: Path, figures: tuple[Figure, ...] = (), seconds: fl
     return Outcome(trouble=trouble, seconds=time.perf_counter() - began)
 
 
-def _send_outcome(sender: Connection, document: Path, figures: tuple[Figure, ...]) -> None:
+def _send_outcome(sender: Connection, document: Path, figures: tuple[Figure, ...], longest: float) -> None:
     try:
-        sender.send(outcome_of(document, figures))
+        sender.send(outcome_of(document, figures, longest))
     except Exception as error:  # whatever happens is an outcome of this document, not of the test run
         place = error.__traceback__
         while place and place.tb_next:
@@ -61,13 +64,15 @@ def _send_outcome(sender: Connection, document: Path, figures: tuple[Figure, ...
         sender.send(Outcome(trouble=f"{type(error).__name__}: {error}{where}"))
 
 
-def outcome_of(document: Path, figures: tuple[Figure, ...] = ()) -> Outcome:
+def outcome_of(document: Path, figures: tuple[Figure, ...] = (), longest: float = inf) -> Outcome:
     """Read, assemble and solve in this process; raises what these raise."""
     from service.assemble import assemble
     from service.spec import read
     from solvers.solve import solve
 
     problem = assemble(read(document.read_bytes()))
+    limit = min(problem.options.time_limit, longest)
+    problem = replace(problem, options=replace(problem.options, time_limit=limit))
     began = time.perf_counter()
     solution = solve(problem)
     seconds = time.perf_counter() - began
