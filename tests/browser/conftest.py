@@ -18,12 +18,17 @@ START_SECONDS = 30
 
 
 def pytest_collection_modifyitems(items):
-    """Everything in this folder needs the browser."""
+    """Everything in this folder needs the browser, and comes last: its driver keeps this process's only event loop."""
     for item in items:
-        if "tests/browser/" in item.nodeid:
+        if _is_here(item):
             item.add_marker("browser")
             if CHROMIUM is None:
                 item.add_marker(pytest.mark.skip(reason="Debian's package chromium is not installed"))
+    items.sort(key=_is_here)
+
+
+def _is_here(item):
+    return "tests/browser/" in item.nodeid
 
 
 @pytest.fixture(scope="session")
