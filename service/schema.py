@@ -67,21 +67,37 @@ results = sql.Table(
 )
 
 
+_VERSIONS = sql.Table(
+    "alembic_version", sql.MetaData(), sql.Column("version_num", sql.String(32), nullable=False, primary_key=True)
+)
+"""As the migrations keep it."""
+
+
 def upgrade(engine: sql.Engine) -> None:
     """Bring the database to the current schema; two servers that start at once do it one after the other."""
     if _revision(engine) == HEAD:
         return
+    with engine.begin() as connection:
+        if connection.dialect.name == "postgresql":
+            connection.execute(sql.select(sql.func.pg_advisory_xact_lock(_LOCK)))
+        if sql.inspect(connection).get_table_names():
+            migrate(connection)
+        else:
+            METADATA.create_all(connection)  # to which all migrations lead
+            _VERSIONS.create(connection)
+            connection.execute(_VERSIONS.insert().values(version_num=HEAD))
+
+
+def migrate(connection: sql.Connection) -> None:
+    """Go through the migrations that are missing."""
     # Alembic is slow to import, and most starts do not need it.
     from alembic import command
     from alembic.config import Config
 
-    with engine.begin() as connection:
-        if connection.dialect.name == "postgresql":
-            connection.execute(sql.select(sql.func.pg_advisory_xact_lock(_LOCK)))
-        config = Config()
-        config.set_main_option("script_location", str(_MIGRATIONS).replace("%", "%%"))
-        config.attributes["connection"] = connection
-        command.upgrade(config, "head")
+    config = Config()
+    config.set_main_option("script_location", str(_MIGRATIONS).replace("%", "%%"))
+    config.attributes["connection"] = connection
+    command.upgrade(config, "head")
 
 
 def _revision(engine: sql.Engine) -> str | None:

@@ -11,6 +11,7 @@ from alembic.migration import MigrationContext
 from alembic.script import ScriptDirectory
 
 from service import schema
+from service.database import open_database
 from service.run import (
     CursorError,
     Figures,
@@ -354,8 +355,11 @@ def test_a_directory_that_cannot_be_made_is_an_error_of_the_store(tmp_path):
 # Schema
 
 
-def test_the_migrations_lead_to_the_tables_of_the_code(store):
-    with store._engine.connect() as connection:
+def test_the_migrations_lead_to_the_tables_of_the_code(url):
+    Store(url).close()  # makes the directory
+    engine = open_database(url.replace("runs.", "migrated."))
+    with engine.begin() as connection:
+        schema.migrate(connection)
         assert compare_metadata(MigrationContext.configure(connection), schema.METADATA) == []
         made = {
             sql_text
@@ -368,12 +372,21 @@ def test_the_migrations_lead_to_the_tables_of_the_code(store):
         with fresh.connect() as other:
             meant = {sql_text for (sql_text,) in other.exec_driver_sql("SELECT sql FROM sqlite_schema")}
         fresh.dispose()
+    engine.dispose()
     assert {_words(text) for text in made if text} - {_words(text) for text in meant if text} == set()
     assert {_words(text) for text in meant if text} - {_words(text) for text in made if text} == set()
 
 
 def _words(text):
     return " ".join(text.split())
+
+
+def test_new_tables_are_known_to_the_migrations(store):
+    with store._engine.begin() as connection:
+        tables = connection.exec_driver_sql("SELECT sql FROM sqlite_schema").all()
+        assert MigrationContext.configure(connection).get_current_heads() == (schema.HEAD,)
+        schema.migrate(connection)
+        assert connection.exec_driver_sql("SELECT sql FROM sqlite_schema").all() == tables
 
 
 def test_the_stated_revision_is_the_last_one():
