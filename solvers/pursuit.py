@@ -35,6 +35,8 @@ FIRST_DEGREE = 4
 MESHES = 24
 GROWTH = 2.5
 """How much larger, in points, one mesh may be than the one before."""
+CURVE_ROOM = 100.0
+"""How much more than the tolerance the curve may still have moved: a switch that hardly matters moves freely."""
 FEW_ITERATIONS = 200
 """Iterations within which a solve from a related trajectory must be through: it starts near its end."""
 LEAST_GAIN = 0.05
@@ -379,10 +381,10 @@ def _settled(pursuit: Pursuit) -> End | None:
     errors = [step.error or 0.0 for step in pursuit.steps]
     floor = 2 * FLOOR * abs(pursuit.paths[-1].program.value_scale)
     value_met = pursuit.value_error <= tolerance * pursuit.value_size + floor
-    if value_met and errors[-1] <= tolerance and pursuit.curve_error <= tolerance:
+    if value_met and errors[-1] <= tolerance and pursuit.curve_error <= CURVE_ROOM * tolerance:
         return End.CONVERGED
     stuck = len(errors) > 6 and min(errors[-6:]) > 0.3 * errors[-7]
-    slow = len(errors) > 2 and min(errors[-2:]) > 0.5 * errors[-3] and pursuit.curve_error <= 100 * tolerance
+    slow = len(errors) > 2 and min(errors[-2:]) > 0.5 * errors[-3] and pursuit.curve_error <= CURVE_ROOM * tolerance
     if value_met and (stuck or (slow and pursuit.value_met_before)):
         return End.SETTLED
     pursuit.value_met_before = value_met

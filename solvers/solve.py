@@ -66,6 +66,8 @@ def _in_given_form(problem: Problem, watch: Watch | None, deadline: float) -> Pu
     if sharp is not None:
         sharp.steps[:0] = pursuit.steps
         sharp.iterations += pursuit.iterations
+        if sharp.end is End.TIME and time.perf_counter() < deadline and sharp.value_met_before:
+            sharp.end = End.SETTLED  # the room for this search was over, not the time of the run
         if sharp.end in (End.CONVERGED, End.SETTLED):
             return sharp
     plain = go_on(pursuit, watch, deadline)
