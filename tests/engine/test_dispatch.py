@@ -13,6 +13,12 @@ from service.owner import DirectoryInUseError
 from service.run import IdempotencyError, QueueFullError, State, StoreFullError, new_run
 
 
+def works_on(dispatcher, run):
+    """True once the worker has told anything about the run, be it shown or held back for a moment."""
+    channel = dispatcher._progress._channels[run.id]
+    return channel.number > 1 or channel.pending is not None
+
+
 def progress_of(dispatcher, run, after=None):
     async def collect():
         return [event async for event in dispatcher.follow(run.id, after)]
@@ -105,7 +111,7 @@ def test_a_cancelled_run_keeps_what_it_has(start, submit, ended, until):
 def test_a_deaf_run_is_stopped_by_force(start, submit, ended, until):
     dispatcher, store = start()
     run = submit(dispatcher, "deaf")
-    until(lambda: dispatcher._progress._channels[run.id].number > 1)
+    until(lambda: works_on(dispatcher, run))
     dispatcher.cancel(run.id)
     run = ended(store, run)
     assert (run.state, run.reason, store.result(run.id)) == (State.STOPPED, "stopped on request", None)
@@ -124,7 +130,7 @@ def test_a_waiting_run_stops_at_once(start, submit):
 def test_a_cancel_between_two_attempts_ends_the_run(start, submit, ended, until):
     dispatcher, store = start()
     busy = submit(dispatcher, "deaf")
-    until(lambda: dispatcher._progress._channels[busy.id].number > 1)
+    until(lambda: works_on(dispatcher, busy))
     store.ask_cancel(busy.id)  # as another server would, which cannot reach the worker
     pid = dispatcher._engine._slots[0]._process.pid
     os.kill(pid, signal.SIGKILL)
@@ -135,7 +141,7 @@ def test_a_cancel_between_two_attempts_ends_the_run(start, submit, ended, until)
 def test_another_servers_cancel_arrives_with_the_next_renewal(start, submit, ended, until):
     dispatcher, store = start(lease_seconds=0.3)
     run = submit(dispatcher, "count", steps=5000)
-    until(lambda: dispatcher._progress._channels[run.id].number > 1)
+    until(lambda: works_on(dispatcher, run))
     store.ask_cancel(run.id)
     assert ended(store, run).state is State.STOPPED
 
@@ -143,7 +149,7 @@ def test_another_servers_cancel_arrives_with_the_next_renewal(start, submit, end
 def test_a_deleted_run_leaves_nothing_and_frees_its_slot(start, submit, ended, until):
     dispatcher, store = start()
     run = submit(dispatcher, "deaf")
-    until(lambda: dispatcher._progress._channels[run.id].number > 1)
+    until(lambda: works_on(dispatcher, run))
     assert dispatcher.delete(run.id)
     assert not dispatcher.delete(run.id)
     assert ended(store, submit(dispatcher)).state is State.FINISHED
