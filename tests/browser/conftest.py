@@ -5,6 +5,7 @@ import shutil
 import subprocess
 import sys
 import time
+from pathlib import Path
 from urllib.parse import urlsplit
 
 import pytest
@@ -28,7 +29,7 @@ def pytest_collection_modifyitems(items):
 
 
 def _is_here(item):
-    return "tests/browser/" in item.nodeid
+    return Path(__file__).parent in item.path.parents
 
 
 @pytest.fixture(scope="session")
