@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 
 from solvers.curve import Curve
 from solvers.gauge import Gauged
+from solvers.limits import number
 from solvers.regraph import regraph
 from solvers.solution import Check, Price
 
@@ -28,10 +29,21 @@ def as_graph(gauged: Gauged, shape: Curve, multipliers: Curve, factor: float) ->
     costates = {name: partial(_scaled, multipliers, name, factor) for name in names if name in multipliers.functions}
     wanted = functions | {f"costate {name}": function for name, function in costates.items()}
     graph = regraph(shape.breaks, partial(shape.evaluate, x), wanted, names[0])
+    breaks = graph.breaks.copy()
+    breaks[0], breaks[-1] = _end(gauged, 0, breaks[0]), _end(gauged, -1, breaks[-1])
     return (
-        Curve(graph.breaks, {name: graph.functions[name] for name in functions}),
-        Curve(graph.breaks, {name: graph.functions[f"costate {name}"] for name in costates}),
+        Curve(breaks, {name: graph.functions[name] for name in functions}),
+        Curve(breaks, {name: graph.functions[f"costate {name}"] for name in costates}),
     )
+
+
+def _end(gauged: Gauged, place: int, found: float) -> float:
+    """An end that is given exactly as it was given; one that is free where it was found."""
+    constants = {c.name: c.value for c in gauged.original.constants}
+    try:
+        return number(gauged.original.places[place].tree, constants)
+    except KeyError:
+        return found
 
 
 def _slope(shape: Curve, x: str, name: str, at: Array) -> Array:

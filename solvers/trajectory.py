@@ -21,7 +21,7 @@ from solvers.layout import Layout, row_order
 from solvers.limits import constants_of, number
 from solvers.lowering import primed
 from solvers.mesh import Mesh
-from solvers.problem import Seek
+from solvers.problem import Problem, Seek
 from solvers.transcription import Program
 
 Array = NDArray[np.float64]
@@ -83,7 +83,7 @@ def trajectory(program: Program, minimum: Minimum) -> Trajectory:
     """Read a solved program."""
     where, scale = program.layout, program.scale
     z = minimum.z * scale
-    places = z[where.places]
+    places = place_values(program.compiled.lowered.problem, where, z)
     point = program.compiled.point
     count = len(where.fractions)
     sign_and_size = abs(program.value_scale)
@@ -108,6 +108,14 @@ def trajectory(program: Program, minimum: Minimum) -> Trajectory:
         bound_multipliers=bounds * sign_and_size / scale,
         row_multipliers=rows,
     )
+
+
+def place_values(problem: Problem, where: Layout, z: Array) -> Array:
+    """The places; those that are given exactly as they were given, not as scaling has left them."""
+    constants = {c.name: c.value for c in problem.constants}
+    free = np.isin(where.places, where.parameters)
+    return np.array([z[index] if moves else number(place.tree, constants)
+                     for place, index, moves in zip(problem.places, where.places, free, strict=True)])  # fmt: skip
 
 
 def _slopes(program: Program, minimum: Minimum) -> Array:
