@@ -381,7 +381,7 @@ def _settled(pursuit: Pursuit) -> End | None:
     errors = [step.error or 0.0 for step in pursuit.steps]
     floor = 2 * FLOOR * abs(pursuit.paths[-1].program.value_scale)
     value_met = pursuit.value_error <= tolerance * pursuit.value_size + floor
-    if value_met and errors[-1] <= tolerance and pursuit.curve_error <= CURVE_ROOM * tolerance:
+    if value_met and errors[-1] <= tolerance and pursuit.curve_error <= tolerance:
         return End.CONVERGED
     stuck = len(errors) > 6 and min(errors[-6:]) > 0.3 * errors[-7]
     slow = len(errors) > 2 and min(errors[-2:]) > 0.5 * errors[-3] and pursuit.curve_error <= CURVE_ROOM * tolerance
