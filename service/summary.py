@@ -13,6 +13,7 @@ from web.caution import CAUTION
 
 _WIDEST = 100
 _FIRST_COLUMN = 14
+_CHECK_COLUMN = 16
 
 
 def refusal_text(refused: Refused, body: bytes) -> str:
@@ -111,7 +112,7 @@ def _check(check: Mapping[str, Any], result: Mapping[str, Any]) -> Iterator[str]
         figure = f"{check['figure']:.1e}"
         if check["threshold"] is not None:
             figure += f" (at most {check['threshold']:.0e})"
-    yield f"  {check['status']:<16}{check['name']:<{_FIRST_COLUMN}}{figure}".rstrip()
+    yield f"  {check['status']:<16}{check['name']:<{_CHECK_COLUMN}}{figure}".rstrip()
     if check["status"] == "failed":
         yield f"{'':18}{check['sentence']}"
         where = check["where"]
