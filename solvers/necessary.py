@@ -11,7 +11,8 @@ from __future__ import annotations
 
 import time
 from collections.abc import Callable, Iterator, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
+from functools import cached_property
 
 from solvers.augmented import EXPANDED_LIMIT, Augmented, augment, prescribed, unused
 from solvers.formula.algebra import ZERO, add, bare, factored, factors_of, monic, multiply, negative
@@ -30,7 +31,7 @@ READABLE_RATE = 16
 """Nodes up to which a derivative along the curve is carried out; longer ones stay as d/dx of a formula."""
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(frozen=True)
 class Necessary:
     """One condition.  `place` ("t = T") is where it holds, or None where it holds everywhere.
 
@@ -45,7 +46,7 @@ class Necessary:
     extent: Range
     place: Relation | None = None
 
-    @property
+    @cached_property
     def text(self) -> str:
         """The condition as plain text."""
         return text(self.relation) + (f" at {text(self.place)}" if self.place else "")
@@ -120,12 +121,13 @@ def _limits(problem: Problem) -> Iterator[str]:
         yield f"At {inner} the momenta or costates may jump."
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(frozen=True)
 class _Derivation:
     problem: Problem
     lowered: Lowered
     augmented: Augmented
     check: Callable[[], None]
+    slopes: dict[tuple[Node, Node], Node] = field(default_factory=dict)  # those found so far
 
     def conditions(self) -> Iterator[Necessary]:
         """Euler-Lagrange where the integrand holds every highest derivative and no dynamics give one."""
@@ -133,7 +135,7 @@ class _Derivation:
         held = all(self.slope(self.lagrangian, name) != ZERO for name in highest)
         return self.variational_system() if held and not self.lowered.given else self.hamiltonian_system()
 
-    @property
+    @cached_property
     def lagrangian(self) -> Node:
         return factored(add([self.augmented.integrand, self.augmented.along]))
 
@@ -240,7 +242,11 @@ class _Derivation:
         return Range(self.problem.independent, self.problem.places[0].tree, self.problem.places[-1].tree)
 
     def slope(self, tree: Node, target: Node) -> Node:
-        return derivative(tree, target, self.check)
+        """The partial derivative; most are asked for twice, and many formulas do not hold the target at all."""
+        if (tree, target) not in self.slopes:
+            held = any(node == target for node in walk(tree))
+            self.slopes[tree, target] = derivative(tree, target, self.check) if held else ZERO
+        return self.slopes[tree, target]
 
     def explicit(self, tree: Node) -> Node:
         """The tree with every highest derivative that the dynamics give replaced by its formula."""
@@ -254,13 +260,30 @@ class _Derivation:
 
     def along(self, tree: Node, times: int = 1) -> Node:
         """The derivative along the curve: carried out where it stays short, else only written down."""
-        carried_out = tree
+        rate, independent = tree, self.problem.independent
         for _ in range(times):
-            carried_out = total_derivative(carried_out, self.problem.independent, self.augmented.functions, self.check)
-            if size(carried_out) > READABLE_RATE:
-                power = f"^{times}" if times > 1 else ""
-                return Call(f"d{power}/d{self.problem.independent}{power}", (tree,))
-        return carried_out
+            if self.least_rate(rate) <= READABLE_RATE:
+                rate = total_derivative(rate, independent, self.augmented.functions, self.check)
+                if size(rate) <= READABLE_RATE:
+                    continue
+            power = f"^{times}" if times > 1 else ""
+            return Call(f"d{power}/d{independent}{power}", (tree,))
+        return rate
+
+    def least_rate(self, tree: Node) -> int:
+        """Nodes that the derivative along the curve has at least: each factor that varies makes a term with the others.
+
+        Cheap, and most derivatives are too long to be carried out.
+        """
+        if isinstance(tree, Sum):
+            return sum(map(self.least_rate, tree.terms))
+        parts = [(size(base), self.varies(base)) for base, _ in factors_of(tree)[1]]
+        varying = sum(varies for _, varies in parts)
+        return sum(length * (varying - varies) for length, varies in parts)
+
+    def varies(self, tree: Node) -> bool:
+        names = {*self.augmented.functions, self.problem.independent}
+        return any(isinstance(node, Name) and node.name in names for node in walk(tree))
 
     def alternating(self, slopes: list[Node]) -> Node:
         """slopes[0] - d/dx slopes[1] + d²/dx² slopes[2] - ..."""
