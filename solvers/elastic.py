@@ -9,13 +9,12 @@ Reference: Nocedal, Wright (2006), Numerical Optimization, section 17.2 (l1 pena
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
-import casadi as ca
 import numpy as np
 from numpy.typing import NDArray
 
-from solvers.entries import sparse
+from solvers.entries import Entries, Pattern
 from solvers.ipopt import Iterate, Minimum, Start, minimise
 from solvers.lowering import Quantity, primed
 from solvers.solution import Finding
@@ -43,6 +42,63 @@ class LeastViolation:
     total: float
     findings: tuple[Finding, ...]
     minimum: Minimum
+
+
+@dataclass(frozen=True, slots=True)
+class _Elastic:
+    """The program whose variables are z and the slacks, and whose f is the sum of these."""
+
+    lower: Array
+    upper: Array
+    row_lower: Array
+    row_upper: Array
+    numbers: _Numbers
+
+
+class _Numbers:
+    """Its numbers; its rows are the hard rows of g, the relaxed ones plus and minus their slack, held z the same."""
+
+    def __init__(self, program: Program, hard: Indices, relaxed: Indices, held: Indices, owners: Indices,
+                 signs: Array, slacks: int) -> None:  # fmt: skip
+        self._inner, self._size, self._slacks = program.numbers, program.layout.size, slacks
+        self._hard, self._relaxed, self._held, self._owners, self._signs = hard, relaxed, held, owners, signs
+        h, m, k = len(hard), len(relaxed), len(held)
+        inner, entries = self._inner.jacobian_pattern, Entries()
+        for own, start in ((hard, 0), (relaxed, h), (relaxed, h + m)):
+            row = np.full(inner.shape[0], -1)
+            row[own] = start + np.arange(len(own))
+            kept = np.flatnonzero(row[inner.rows] >= 0)
+            entries.add(row[inner.rows[kept]], inner.columns()[kept], 1.0, kept)
+        entries.add(h + 2 * m + np.arange(2 * k), np.tile(held, 2), 1.0)
+        entries.add(h + np.arange(len(owners)), self._size + owners, signs)
+        size = self._size + slacks
+        self._jacobian = entries.recipe((h + 2 * (m + k), size))
+        self.jacobian_pattern = self._jacobian.pattern
+        curved = self._inner.hessian_pattern
+        starts = np.append(curved.starts, np.full(slacks, curved.starts[-1]))
+        self.hessian_pattern = Pattern((size, size), curved.rows, starts)
+
+    def value(self, w: Array) -> float:
+        return float(w[self._size :].sum())
+
+    def gradient(self, w: Array) -> Array:
+        return np.concatenate([np.zeros(self._size), np.ones(self._slacks)])
+
+    def constraints(self, w: Array) -> Array:
+        z, slack = w[: self._size], w[self._size :]
+        g = self._inner.constraints(z)
+        soft = np.concatenate([g[self._relaxed], g[self._relaxed], z[self._held], z[self._held]])
+        return np.concatenate([g[self._hard], soft + self._signs * slack[self._owners]])
+
+    def jacobian(self, w: Array) -> Array:
+        return self._jacobian.nonzeros(self._inner.jacobian(w[: self._size]))
+
+    def hessian(self, w: Array, weight_f: float, weight_g: Array) -> Array:
+        weights = np.zeros(self._inner.jacobian_pattern.shape[0])
+        h, m = len(self._hard), len(self._relaxed)
+        weights[self._hard] = weight_g[:h]
+        weights[self._relaxed] = weight_g[h : h + m] + weight_g[h + m : h + 2 * m]
+        return self._inner.hessian(w[: self._size], 0.0, weights)
 
 
 def groups(program: Program) -> list[Group]:
@@ -97,15 +153,8 @@ def least_violation(
     relaxed, held = np.flatnonzero(owner_of_row >= 0), np.flatnonzero(owner_of_variable >= 0)
     hard = np.flatnonzero(owner_of_row < 0)
     m, k = len(relaxed), len(held)
-    total = len(hard) + 2 * m + 2 * k
-    at = np.arange(total)
-    on_g = sparse((total, count), at[: len(hard) + 2 * m], np.concatenate([hard, relaxed, relaxed]),
-                  np.ones(len(hard) + 2 * m))  # fmt: skip
-    on_z = sparse((total, size), at[len(hard) + 2 * m :], np.concatenate([held, held]), np.ones(2 * k))
-    soft = np.arange(len(hard), total)
     owners = np.concatenate([owner_of_row[relaxed]] * 2 + [owner_of_variable[held]] * 2)
     signs = np.concatenate([np.ones(m), -np.ones(m), np.ones(k), -np.ones(k)])
-    on_s = sparse((total, len(parts)), soft, owners, signs)
     infinite = np.inf
     row_lower = np.concatenate([program.row_lower[hard], program.row_lower[relaxed], np.full(m, -infinite),
                                 program.lower[held], np.full(k, -infinite)])  # fmt: skip
@@ -113,42 +162,15 @@ def least_violation(
                                 np.full(k, infinite), program.upper[held]])  # fmt: skip
     lower, upper = program.lower.copy(), program.upper.copy()
     lower[held], upper[held] = -infinite, infinite
-    functions = program.functions
-    w = ca.MX.sym("w", size + len(parts))
-    inside, slack, constants = w[:size], w[size:], functions["c"]
-    values, jacobian = functions["jac_g"](inside, constants)
-    g = ca.mtimes(on_g, values) + ca.mtimes(on_z, inside) + ca.mtimes(on_s, slack)
-    plain_g = ca.Function("g", [functions["z"], constants], [functions["g"]])
-    rows_only = ca.mtimes(on_g, plain_g(inside, constants)) + ca.mtimes(on_z, inside) + ca.mtimes(on_s, slack)
-    weight_f, weight_g = ca.MX.sym("lam_f"), ca.MX.sym("lam_g", total)
-    curvature = functions["hess_lag"](inside, constants, 0, ca.mtimes(on_g.T, weight_g))
-    f = ca.sum1(slack)
-    slope = ca.vertcat(ca.DM.zeros(size, 1), ca.DM.ones(len(parts), 1))
-    elastic = {
-        "z": w,
-        "c": constants,
-        "f": f,
-        "g": rows_only,
-        "grad_f": ca.Function("grad_f", [w, constants], [f, slope],
-                              ["x", "p"], ["f", "grad_f_x"]),
-        "jac_g": ca.Function("jac_g", [w, constants], [g, ca.horzcat(ca.mtimes(on_g, jacobian) + on_z, on_s)],
-                             ["x", "p"], ["g", "jac_g_x"]),
-        "hess_lag": ca.Function("hess_lag", [w, constants, weight_f, weight_g],
-                                [ca.diagcat(curvature, ca.MX(len(parts), len(parts)))],
-                                ["x", "p", "lam_f", "lam_g"], ["hess_gamma_x_x"]),
-    }  # fmt: skip
-    grown = replace(
-        program,
-        layout=replace(program.layout, size=size + len(parts)),
-        rows=replace(program.rows, count=total),
+    elastic = _Elastic(
         lower=np.concatenate([lower, np.zeros(len(parts))]),
         upper=np.concatenate([upper, np.full(len(parts), infinite)]),
         row_lower=row_lower,
         row_upper=row_upper,
-        functions=elastic,
+        numbers=_Numbers(program, hard, relaxed, held, owners, signs, len(parts)),
     )
     start = np.concatenate([z, np.ones(len(parts))])
-    minimum = minimise(grown, Start(start), time_limit=time_limit, watch=watch)
+    minimum = minimise(elastic, Start(start), time_limit=time_limit, watch=watch)
     answer, amounts = minimum.z[:size], minimum.z[size:]
     findings = _findings(program, parts, owner_of_variable, answer, amounts)
     return LeastViolation(answer, float(np.sum(amounts[amounts > 1e-7])), findings, minimum)
@@ -156,8 +178,7 @@ def least_violation(
 
 def _findings(program: Program, parts: list[Group], owners: Array, z: Array, amounts: Array) -> tuple[Finding, ...]:
     """What is broken, worst first, with the place where it is."""
-    values = np.asarray(ca.Function("g", [program.functions["z"], program.functions["c"]], [program.functions["g"]])(
-        z, list(program.compiled.constants))).ravel()  # fmt: skip
+    values = program.numbers.constraints(z)
     row_excess = np.maximum(program.row_lower - values, values - program.row_upper)
     excess = np.maximum(program.lower - z, z - program.upper)
     found = []

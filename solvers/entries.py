@@ -1,14 +1,10 @@
-"""Sparse matrices whose nonzeros are a constant plus constant multiples of numbers that are computed later.
-
-Nearly every nonzero is made of one number, so it is fetched by its index; only what is left over is added by a small
-sparse product.  Lists of Python numbers are what CasADi takes fastest.
-"""
+"""Sparse matrices whose nonzeros are a constant plus constant multiples of numbers that are computed later."""
 
 from __future__ import annotations
 
+from dataclasses import dataclass
 from typing import Any
 
-import casadi as ca
 import numpy as np
 from numpy.typing import NDArray
 
@@ -17,6 +13,49 @@ Indices = NDArray[np.int64]
 
 CONSTANT = -1
 """The source of an entry that is made of no number."""
+
+
+@dataclass(frozen=True, slots=True)
+class Pattern:
+    """The places of the nonzeros of a sparse matrix by compressed columns: rows (nonzeros) and starts (columns + 1)."""
+
+    shape: tuple[int, int]
+    rows: Indices
+    starts: Indices
+
+    def columns(self) -> Indices:
+        """The column of every nonzero."""
+        return np.repeat(np.arange(self.shape[1]), np.diff(self.starts))
+
+    def filled(self, nonzeros: Array) -> Any:
+        """The matrix with its nonzeros, as one of SciPy, which is loaded only where it is needed."""
+        from scipy.sparse import csc_matrix
+
+        return csc_matrix((nonzeros, self.rows, self.starts), shape=self.shape)
+
+    def times_from_left(self, vector: Array, nonzeros: Array) -> Array:
+        """The product vector.matrix."""
+        return counted(self.columns(), vector[self.rows] * nonzeros, self.shape[1])
+
+
+@dataclass(frozen=True, slots=True)
+class Recipe:
+    """How the nonzeros of a matrix are made of numbers: each number that goes anywhere, its factor and its place."""
+
+    pattern: Pattern
+    constant: Array  # one for every nonzero
+    sources: Indices  # of the numbers, in the order of their nonzeros
+    factors: Array
+    first: Indices  # where, among the sources, those of the next nonzero begin
+    places: Indices  # the nonzeros that are made of numbers
+
+    def nonzeros(self, numbers: Array) -> Array:
+        """The nonzeros in the order of the pattern."""
+        parts = numbers[self.sources] * self.factors
+        made = self.constant.copy()
+        if len(parts):
+            made[self.places] += parts if len(parts) == len(self.places) else np.add.reduceat(parts, self.first)
+        return made
 
 
 class Entries:
@@ -36,51 +75,29 @@ class Entries:
         self._values.append(values.ravel().astype(float))
         self._sources.append(sources.ravel())
 
-    def matrix(self, shape: tuple[int, int], numbers: ca.MX) -> ca.MX:
-        """The matrix as an expression of the numbers (a column)."""
-        rows, columns = np.concatenate(self._rows), np.concatenate(self._columns)
-        values, sources = np.concatenate(self._values), np.concatenate(self._sources)
-        keys, place = np.unique(columns * shape[0] + rows, return_inverse=True)
-        constant = np.zeros(len(keys))
+    def recipe(self, shape: tuple[int, int]) -> Recipe:
+        """How the matrix is made."""
+        keys = np.concatenate(self._columns) * shape[0] + np.concatenate(self._rows)
+        order = np.argsort(keys, kind="stable")
+        keys = keys[order]
+        values, sources = np.concatenate(self._values)[order], np.concatenate(self._sources)[order]
+        new = _changes(keys)
+        place = np.cumsum(new) - 1
+        keys = keys[new]
         fixed = sources == CONSTANT
-        np.add.at(constant, place[fixed], values[fixed])
-        place, values, sources = place[~fixed], values[~fixed], sources[~fixed]
-        nothing = int(numbers.size1())  # the index of a zero behind the numbers
-        index, factor = np.full(len(keys), nothing), np.zeros(len(keys))
-        first = np.zeros(len(place), dtype=bool)
-        first[np.unique(place, return_index=True)[1]] = True
-        index[place[first]], factor[place[first]] = sources[first], values[first]
-        nonzeros = column(constant) + fetch(ca.vertcat(numbers, 0), index) * column(factor)
-        if not first.all():
-            rest = ~first
-            nonzeros += ca.mtimes(sparse((len(keys), nothing), place[rest], sources[rest], values[rest]), numbers)
-        return ca.MX(pattern(shape, keys % shape[0], keys // shape[0]), nonzeros)
+        constant = counted(place[fixed], values[fixed], len(keys))
+        place, made = place[~fixed], ~fixed
+        first = np.flatnonzero(_changes(place))
+        columns = keys // shape[0]
+        pattern = Pattern(shape, keys - columns * shape[0], np.searchsorted(columns, np.arange(shape[1] + 1)))
+        return Recipe(pattern, constant, sources[made], values[made], first, place[first])
 
 
-def fetch(values: ca.MX, indices: Indices) -> ca.MX:
-    """Entries of a column by their indices, as a column."""
-    return ca.vec(values[indices.tolist()]) if len(indices) else ca.MX(0, 1)
+def counted(places: Indices, values: Array, size: int) -> Array:
+    """Sums of the values at each place."""
+    return np.bincount(places, values, size).astype(float)  # without any values NumPy counts in integers
 
 
-def part(values: ca.MX, start: int, end: int) -> ca.MX:
-    """Entries `start` up to, not including, `end` of a column, as a column also where it has but one entry."""
-    return values[start:end] if end > start else ca.MX(0, 1)
-
-
-def column(values: Array) -> ca.DM:
-    """A dense column."""
-    return ca.DM(values.tolist()) if len(values) else ca.DM(0, 1)
-
-
-def pattern(shape: tuple[int, int], rows: Indices, columns: Indices) -> ca.Sparsity:
-    """A pattern from places that are sorted by column, then row, without repetition."""
-    starts = np.searchsorted(columns, np.arange(shape[1] + 1))
-    return ca.Sparsity(shape[0], shape[1], starts.tolist(), rows.tolist())
-
-
-def sparse(shape: tuple[int, int], rows: Indices, columns: Indices, values: Array) -> ca.DM:
-    """A sparse matrix; entries at the same place are added."""
-    keys, place = np.unique(columns * shape[0] + rows, return_inverse=True)
-    total = np.zeros(len(keys))
-    np.add.at(total, place, values)
-    return ca.DM(pattern(shape, keys % shape[0], keys // shape[0]), total.tolist())
+def _changes(values: Indices) -> NDArray[np.bool_]:
+    """Where sorted values differ from the one before; the first one always does."""
+    return np.concatenate([np.ones(min(len(values), 1), dtype=bool), values[1:] != values[:-1]])

@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+from functools import lru_cache
 from typing import TYPE_CHECKING
 
+import casadi as ca
 import numpy as np
 from numpy.typing import NDArray
 
@@ -13,6 +15,50 @@ if TYPE_CHECKING:
     from solvers.layout import Layout
 
 Array = NDArray[np.float64]
+
+
+CHUNK = 32
+"""Sets of inputs that a function takes at once: mapping it costs some microseconds for each, so it is done but once."""
+
+
+@lru_cache(maxsize=256)
+def _by_chunks(function: ca.Function) -> ca.Function:
+    return function.map(CHUNK)
+
+
+class Mapped:
+    """A CasADi function at many sets of inputs; the arrays on both sides are the function's own memory."""
+
+    def __init__(self, function: ca.Function, count: int) -> None:
+        self._count, self._step = count, CHUNK if count > 1 else 1
+        self._function = _by_chunks(function) if count > 1 else function
+        self._padded = -(-count // self._step) * self._step
+        self._inputs = [np.zeros((self._padded, function.numel_in(k))) for k in range(function.n_in())]
+        self._views = [memoryview(values) for values in self._inputs]  # type: ignore[arg-type]
+        self._outputs = int(function.nnz_out(0))
+        self._buffer, self._evaluate = self._function.buffer()
+
+    def __call__(self, *arguments: Array) -> Array:
+        """The nonzeros of the output (sets x nonzeros) from inputs (sets x entries, or what spreads to that)."""
+        result = np.empty((self._padded, self._outputs))
+        if not result.size:
+            return result[: self._count]
+        for own, given in zip(self._inputs, arguments, strict=True):
+            own[: self._count] = given
+            own[self._count :] = own[0]
+        made = memoryview(result)  # type: ignore[arg-type]
+        for start in range(0, self._padded, self._step):
+            end = start + self._step
+            for k, view in enumerate(self._views):
+                self._buffer.set_arg(k, view[start:end])  # type: ignore[call-arg]
+            self._buffer.set_res(0, made[start:end])  # type: ignore[call-arg]
+            self._evaluate()
+        return result[: self._count]
+
+
+def mapped(function: ca.Function, *arguments: Array) -> Array:
+    """A function at P sets of inputs, once: P x nonzeros.  Undefined values come as NaN."""
+    return Mapped(function, len(arguments[0]))(*arguments)
 
 
 def point_inputs(compiled: Compiled, where: Layout, z: Array) -> tuple[Array, Array]:
@@ -27,13 +73,20 @@ def point_inputs(compiled: Compiled, where: Layout, z: Array) -> tuple[Array, Ar
 def point_outputs(compiled: Compiled, where: Layout, z: Array) -> Array:
     """All outputs of the point function (M x outputs)."""
     v, d = point_inputs(compiled, where, z)
-    return np.asarray(compiled.point.value.map(len(v))(v.T, d.T)).T
+    return mapped(compiled.point.value, v, d)
 
 
 def point_slopes(compiled: Compiled, where: Layout, z: Array) -> Array:
     """The nonzeros of the point function's Jacobian (M x nonzeros)."""
     v, d = point_inputs(compiled, where, z)
-    return np.asarray(compiled.point.jacobian.map(len(v))(v.T, d.T)).T.reshape(len(v), -1)
+    return mapped(compiled.point.jacobian, v, d)
+
+
+def end_outputs(compiled: Compiled, where: Layout, z: Array) -> Array:
+    """All outputs of the end function."""
+    return np.asarray(
+        mapped(compiled.end.value, end_inputs(where, z)[None], np.array(compiled.constants, dtype=float)[None])[0]
+    )
 
 
 def end_inputs(where: Layout, z: Array) -> Array:

@@ -13,7 +13,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from solvers.evaluation import end_inputs, point_outputs
+from solvers.evaluation import end_outputs, point_outputs
 from solvers.functions import Compiled
 from solvers.layout import Layout
 from solvers.limits import constants_of, interval_of, number
@@ -128,7 +128,7 @@ def _violation(compiled: Compiled, where: Layout, z: Array, outputs: Array) -> f
     """How much of the problem a guess violates: undefined values first, then constraints and conditions."""
     point = compiled.point
     constants = constants_of(compiled)
-    end = np.asarray(compiled.end.value(end_inputs(where, z), compiled.constants)).ravel()
+    end = end_outputs(compiled, where, z)
     undefined = float(np.mean(~np.isfinite(outputs))) + float(np.mean(~np.isfinite(end)))
     total = 0.0
     pointwise = outputs[:, point.states : point.states + point.constraints]

@@ -10,13 +10,14 @@ import time
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from enum import Enum
-from typing import Any
+from itertools import count
+from typing import Any, Protocol
 
 import casadi as ca
 import numpy as np
 from numpy.typing import NDArray
 
-from solvers.transcription import Program
+from solvers.entries import Pattern
 
 Array = NDArray[np.float64]
 
@@ -98,10 +99,12 @@ OPTIONS: dict[str, Any] = {
     "ipopt.bound_relax_factor": 0.0,
     "ipopt.max_iter": 600,
     "ipopt.nlp_scaling_method": "none",
+    "ipopt.constr_mult_init_max": 0.0,  # first multipliers by least squares cost a factorization and save no iteration
     "ipopt.mu_strategy": "adaptive",
     "ipopt.fixed_variable_treatment": "make_parameter",
     "print_time": False,
     "show_eval_warnings": False,
+    "no_nlp_grad": True,
     "calc_lam_x": False,
     "calc_lam_p": False,
     "calc_f": False,
@@ -121,45 +124,132 @@ WARM: dict[str, Any] = {
 }
 
 
-class _Watcher(ca.Callback):
-    """Hears of every iteration, keeps the best iterate, and can ask for a stop."""
+class Numbers(Protocol):
+    """f, g and their derivatives; the nonzeros of matrices are in the order of their patterns."""
 
-    def __init__(self, program: Program, watch: Callable[[Iterate], bool]) -> None:
+    @property
+    def jacobian_pattern(self) -> Pattern: ...
+    @property
+    def hessian_pattern(self) -> Pattern: ...
+    def value(self, z: Array, /) -> float: ...
+    def constraints(self, z: Array, /) -> Array: ...
+    def gradient(self, z: Array, /) -> Array: ...
+    def jacobian(self, z: Array, /) -> Array: ...
+    def hessian(self, z: Array, weight_f: float, weight_g: Array, /) -> Array: ...
+
+
+class Bounded(Protocol):
+    """A program: minimise f subject to bounds on z and g."""
+
+    @property
+    def lower(self) -> Array: ...
+    @property
+    def upper(self) -> Array: ...
+    @property
+    def row_lower(self) -> Array: ...
+    @property
+    def row_upper(self) -> Array: ...
+    @property
+    def numbers(self) -> Numbers: ...
+
+
+class _Called(ca.Callback):
+    """Numbers of a program as the function that CasADi calls; both sides are CasADi's own memory."""
+
+    def __init__(
+        self,
+        name: str,
+        inputs: dict[str, ca.Sparsity],
+        outputs: dict[str, tuple[ca.Sparsity, Callable[..., Any]]],
+        errors: list[Exception],
+    ) -> None:
         ca.Callback.__init__(self)
-        self.size, self.rows = program.layout.size, program.rows.count
-        self.program = program
-        self.watch = watch
-        self.count = 0
-        self.error: Exception | None = None
-        self.construct("watcher", {})
+        self._inputs, self._errors = list(inputs.items()), errors
+        self._outputs = [(name, pattern) for name, (pattern, _) in outputs.items()]
+        self._makers = [make for _, make in outputs.values()]
+        self.construct(name, {})
 
     def get_n_in(self) -> int:
-        return int(ca.nlpsol_n_out())
+        return len(self._inputs)
 
     def get_n_out(self) -> int:
-        return 1
+        return len(self._outputs)
 
     def get_name_in(self, index: int) -> str:
-        return str(ca.nlpsol_out(index))
+        return self._inputs[index][0]
+
+    def get_name_out(self, index: int) -> str:
+        return self._outputs[index][0]
 
     def get_sparsity_in(self, index: int) -> ca.Sparsity:
-        sizes = {"f": 1, "x": self.size, "lam_x": self.size, "g": self.rows, "lam_g": self.rows}
-        return ca.Sparsity.dense(sizes.get(ca.nlpsol_out(index), len(self.program.compiled.constants)), 1)
+        return self._inputs[index][1]
 
-    def eval(self, arguments: Sequence[ca.DM]) -> list[float]:
+    def get_sparsity_out(self, index: int) -> ca.Sparsity:
+        return self._outputs[index][1]
+
+    def has_eval_buffer(self) -> bool:
+        return True
+
+    def eval_buffer(self, arguments: Sequence[Any], results: Sequence[Any]) -> int:
+        given = [np.frombuffer(argument) if argument is not None else np.empty(0) for argument in arguments]
         try:
-            g = np.asarray(arguments[2]).ravel()
-            violation = np.maximum(self.program.row_lower - g, g - self.program.row_upper)
-            worst = float(np.max(violation, initial=0.0))
-            stop = self.watch(Iterate(self.count, float(arguments[1]), max(worst, 0.0)))
-            self.count += 1
-        except Exception as error:  # CasADi would report it as a stop by the user
-            self.error, stop = error, True
-        return [1.0 if stop else 0.0]
+            for result, make in zip(results, self._makers, strict=True):
+                if result is not None:
+                    np.frombuffer(result)[:] = make(*given)
+        except Exception as error:  # CasADi would only say that something failed
+            self._errors.append(error)
+            return 1
+        return 0
+
+
+def _functions(program: Bounded, errors: list[Exception]) -> dict[str, _Called]:
+    """What the minimiser calls: the program itself and its derivatives."""
+    numbers, size, count = program.numbers, len(program.lower), len(program.row_lower)
+    one, z, g = ca.Sparsity.dense(1, 1), ca.Sparsity.dense(size, 1), ca.Sparsity.dense(count, 1)
+    where = {"x": z, "p": ca.Sparsity.dense(0, 1)}
+
+    def value(z: Array, *_: Array) -> float:
+        return numbers.value(z)
+
+    def constraints(z: Array, *_: Array) -> Array:
+        return numbers.constraints(z)
+
+    f_and_g = {"f": (one, value), "g": (g, constraints)}
+    gradient = (z, lambda z, _: numbers.gradient(z))
+    jacobian = (_sparsity(numbers.jacobian_pattern), lambda z, _: numbers.jacobian(z))
+    hessian = (_sparsity(numbers.hessian_pattern), lambda z, _, f, g: numbers.hessian(z, float(f[0]), g))
+    return {
+        "nlp": _Called("nlp", where, f_and_g, errors),
+        "grad_f": _Called("grad_f", where, {"f": f_and_g["f"], "grad_f_x": gradient}, errors),
+        "jac_g": _Called("jac_g", where, {"g": f_and_g["g"], "jac_g_x": jacobian}, errors),
+        "hess_lag": _Called("hess_lag", where | {"lam_f": one, "lam_g": g}, {"hess_gamma_x_x": hessian}, errors),
+    }
+
+
+def _sparsity(pattern: Pattern) -> ca.Sparsity:
+    """A pattern as CasADi's; lists are what it takes fastest."""
+    return ca.Sparsity(*pattern.shape, pattern.starts.tolist(), pattern.rows.tolist())
+
+
+def _watcher(program: Bounded, watch: Callable[[Iterate], bool], errors: list[Exception]) -> _Called:
+    """Hears of every iteration, and can ask for a stop."""
+    sizes = {"f": 1, "x": len(program.lower), "lam_x": len(program.lower), "g": len(program.row_lower),
+             "lam_g": len(program.row_lower), "lam_p": 0}  # fmt: skip
+    names = [ca.nlpsol_out(k) for k in range(ca.nlpsol_n_out())]
+    numbers = count()
+
+    def hear(*given: Array) -> float:
+        now = dict(zip(names, given, strict=True))
+        violation = np.maximum(program.row_lower - now["g"], now["g"] - program.row_upper)
+        worst = float(np.max(violation, initial=0.0))
+        return float(watch(Iterate(next(numbers), float(now["f"][0]), worst)) or bool(errors))
+
+    inputs = {name: ca.Sparsity.dense(sizes[name], 1) for name in names}
+    return _Called("watcher", inputs, {"ret": (ca.Sparsity.dense(1, 1), hear)}, errors)
 
 
 def minimise(
-    program: Program,
+    program: Bounded,
     start: Start,
     *,
     time_limit: float = np.inf,
@@ -168,7 +258,6 @@ def minimise(
 ) -> Minimum:
     """Minimise a program from a start; never raises for a numerical failure."""
     began = time.perf_counter()
-    functions = program.functions
     settings = dict(OPTIONS)
     warm = start.multipliers is not None
     if warm:
@@ -176,15 +265,14 @@ def minimise(
     settings |= options or {}
     if np.isfinite(time_limit):
         settings["ipopt.max_wall_time"] = max(time_limit, 0.05)
-    watcher = _Watcher(program, watch) if watch is not None else None
-    if watcher is not None:
-        settings["iteration_callback"] = watcher
-    settings |= {name: functions[name] for name in ("grad_f", "jac_g", "hess_lag")}
-    solver = ca.nlpsol("solver", "ipopt", {"x": functions["z"], "p": functions["c"], "f": functions["f"],
-                                           "g": functions["g"]}, settings)  # fmt: skip
+    errors: list[Exception] = []
+    if watch is not None:
+        settings["iteration_callback"] = _watcher(program, watch, errors)
+    functions = _functions(program, errors)
+    nlp = functions.pop("nlp")
+    solver = ca.nlpsol("solver", "ipopt", nlp, settings | functions)
     arguments: dict[str, Any] = {
         "x0": np.clip(start.z, program.lower, program.upper),
-        "p": list(program.compiled.constants),
         "lbx": program.lower,
         "ubx": program.upper,
         "lbg": program.row_lower,
@@ -193,10 +281,10 @@ def minimise(
     if warm:
         arguments |= {"lam_x0": start.bound_multipliers, "lam_g0": start.multipliers}
     ready = time.perf_counter()
-    answer = solver(**arguments)
+    answer = solver(**{name: values.tolist() for name, values in arguments.items()})
     done = time.perf_counter()
-    if watcher is not None and watcher.error is not None:
-        raise watcher.error
+    if errors:
+        raise errors[0]
     statistics = solver.stats()
     status = str(statistics["return_status"])
     return Minimum(

@@ -92,8 +92,9 @@ def layout(compiled: Compiled, mesh: Mesh) -> Layout:
             position += 1
     integrals = position + np.arange(compiled.point.integrals)
     widths = np.array([i.width for i in mesh.intervals])
-    fractions = np.concatenate([i.start + i.width * i.scheme.points for i in mesh.intervals])
-    measures = np.concatenate([i.width * i.scheme.weights for i in mesh.intervals])
+    lefts = np.array([i.start for i in mesh.intervals])
+    fractions = lefts[owner] + widths[owner] * np.concatenate([i.scheme.points for i in mesh.intervals])
+    measures = widths[owner] * np.concatenate([i.scheme.weights for i in mesh.intervals])
     stretch = np.array([i.stretch for i in mesh.intervals])
     at_place = np.concatenate([[0], np.flatnonzero(np.diff(stretch)) + 1, [len(widths)]])
     return Layout(position + compiled.point.integrals, nodes, inner, controls, places, parameters, integrals, first,

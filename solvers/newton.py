@@ -69,19 +69,18 @@ class _System:
 
     def __init__(self, program: Program) -> None:
         self.program = program
-        self.constants = list(program.compiled.constants)
         self.free = np.flatnonzero(program.lower < program.upper)
         self.equal = np.flatnonzero(program.row_lower == program.row_upper)
 
     def value(self, z: Array) -> float:
-        return float(self.program.functions["grad_f"](z, self.constants)[0])
+        return self.program.numbers.value(z)
 
     def _parts(self, z: Array) -> tuple[Array, Array, Any]:
         """Gradient of f, violation of the equalities, and their Jacobian in the free variables."""
-        gradient = np.asarray(self.program.functions["grad_f"](z, self.constants)[1]).ravel()
-        g, jacobian = self.program.functions["jac_g"](z, self.constants)
-        violation = np.asarray(g).ravel()[self.equal] - self.program.row_lower[self.equal]
-        return gradient[self.free], violation, _matrix(jacobian)[self.equal][:, self.free]
+        numbers = self.program.numbers
+        violation = numbers.constraints(z)[self.equal] - self.program.row_lower[self.equal]
+        jacobian = numbers.jacobian_pattern.filled(numbers.jacobian(z)).tocsr()
+        return numbers.gradient(z)[self.free], violation, jacobian[self.equal][:, self.free]
 
     def residual(self, z: Array, multipliers: Array) -> Array:
         """The optimality system's left side: slopes of the Lagrangian, then violations."""
@@ -102,7 +101,8 @@ class _System:
 
         weights = np.zeros(self.program.rows.count)
         weights[self.equal] = multipliers[self.equal]
-        upper = _matrix(self.program.functions["hess_lag"](z, self.constants, 1.0, weights))
+        numbers = self.program.numbers
+        upper = numbers.hessian_pattern.filled(numbers.hessian(z, 1.0, weights)).tocsr()
         hessian = (upper + sp.triu(upper, 1).T)[self.free][:, self.free]
         jacobian = self._parts(z)[2]
         matrix = sp.bmat([[hessian, jacobian.T], [jacobian, None]], format="csc")
@@ -122,15 +122,6 @@ class _System:
     def within_limits(self, z: Array) -> bool:
         """Whether all inequalities hold; none may bind, for nothing here would hold the point on it."""
         program = self.program
-        g = np.asarray(program.functions["jac_g"](z, self.constants)[0]).ravel()
+        g = program.numbers.constraints(z)
         inside = np.all(z >= program.lower - 1e-9) and np.all(z <= program.upper + 1e-9)
         return bool(inside and np.all(g >= program.row_lower - 1e-7) and np.all(g <= program.row_upper + 1e-7))
-
-
-def _matrix(value: Any) -> Any:
-    """A CasADi matrix as one of SciPy, which is loaded only here: few problems ask for it."""
-    from scipy.sparse import csc_matrix
-
-    pattern = value.sparsity()
-    parts = np.array(value.nonzeros()), np.array(pattern.row()), np.array(pattern.colind())
-    return csc_matrix(parts, shape=pattern.shape).tocsr()

@@ -41,13 +41,12 @@ def bound_multipliers(path: Trajectory) -> Array:
     """Multipliers of the bounds of z in SI, also of those variables that are fixed."""
     program = path.program
     size = abs(program.value_scale)
-    z, constants = path.z / program.scale, list(program.compiled.constants)
-    gradient = np.asarray(program.functions["grad_f"](z, constants)[1]).ravel()
-    jacobian = program.functions["jac_g"](z, constants)[1]
-    pushed = jacobian.sparse().T @ (path.row_multipliers * program.row_scale / size)
+    z, numbers = path.z / program.scale, program.numbers
+    scaled = path.row_multipliers * program.row_scale / size
+    pushed = numbers.jacobian_pattern.times_from_left(scaled, numbers.jacobian(z))
     multipliers = path.bound_multipliers.copy()
     fixed = program.lower == program.upper
-    multipliers[fixed] = (-(gradient + pushed) * size / program.scale)[fixed]
+    multipliers[fixed] = (-(numbers.gradient(z) + pushed) * size / program.scale)[fixed]
     return multipliers
 
 

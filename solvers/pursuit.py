@@ -329,7 +329,7 @@ def _runs_away(program: Program, minimum: Minimum) -> bool:
 def _program(compiled: Compiled, mesh: Mesh, where: Layout, z: Array, before: Scales | None = None) -> Program:
     """A program whose scales come from values (SI) on its mesh, and do not fall far below those of the mesh before."""
     scales = find_scales(compiled, where, z, before)
-    return transcribe(compiled, mesh, scales, find_row_sizes(compiled, where, scales, z))
+    return transcribe(compiled, mesh, where, scales, find_row_sizes(compiled, where, scales, z))
 
 
 def _end_of(minimum: Minimum) -> End:

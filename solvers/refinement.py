@@ -17,6 +17,7 @@ from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
 from solvers.collocation import Family
+from solvers.evaluation import mapped
 from solvers.functions import linear_controls
 from solvers.limits import constants_of, interval_of, quantity_bounds
 from solvers.mesh import Interval, Mesh, interval
@@ -124,7 +125,7 @@ def _bodies_between(path: Trajectory, states: Array) -> Array:
                         np.broadcast_to(ends, shape), parameters], axis=2)  # fmt: skip
     d = np.concatenate([fractions, constants], axis=2)
     count = shape[0] * shape[1]
-    outputs = np.asarray(compiled.point.value.map(count)(v.reshape(count, -1).T, d.reshape(count, -1).T)).T
+    outputs = mapped(compiled.point.value, v.reshape(count, -1), d.reshape(count, -1))
     first = compiled.point.states
     return outputs[:, first : first + compiled.point.constraints].reshape(*shape[:2], -1)
 

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
-from solvers.evaluation import end_inputs, point_outputs, point_slopes
+from solvers.evaluation import end_inputs, mapped, point_outputs, point_slopes
 from solvers.limits import quantity_bounds
 
 if TYPE_CHECKING:
@@ -124,7 +124,7 @@ def find_row_sizes(compiled: Compiled, where: Layout, scales: Scales, z: Array) 
                        sizes)  # fmt: skip
     sizes = np.concatenate([np.tile(scales.states, len(where.places)), scales.places, scales.parameters,
                             scales.integrals])  # fmt: skip
-    numbers = np.asarray(end.jacobian(end_inputs(where, z), compiled.constants)).reshape(1, -1)
+    numbers = mapped(end.jacobian, end_inputs(where, z)[None], np.array(compiled.constants, dtype=float)[None])
     end_slopes = _row_sums(numbers, end.jacobian_rows, end.jacobian_columns, end.outputs, sizes)[0]
     n = point.states
     pointwise = slopes[:, n : n + point.constraints]

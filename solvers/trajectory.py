@@ -9,7 +9,6 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-import casadi as ca
 import numpy as np
 from numpy.typing import NDArray
 
@@ -123,10 +122,9 @@ def _slopes(program: Program, minimum: Minimum) -> Array:
 
     The minimiser takes fixed variables out and knows no multipliers of theirs: this slope, negative, is what they are.
     """
-    constants = list(program.compiled.constants)
-    slope = np.asarray(program.functions["grad_f"](minimum.z, constants)[1]).ravel()
-    jacobian = program.functions["jac_g"](minimum.z, constants)[1]
-    return np.asarray(slope + np.asarray(ca.mtimes(jacobian.T, ca.DM(minimum.multipliers))).ravel())
+    numbers = program.numbers
+    pushed = numbers.jacobian_pattern.times_from_left(minimum.multipliers, numbers.jacobian(minimum.z))
+    return numbers.gradient(minimum.z) + pushed
 
 
 def curve(path: Trajectory) -> Curve:

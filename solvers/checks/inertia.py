@@ -63,20 +63,20 @@ class Count:
 def second_order(sampler: Sampler) -> Second:
     """Hessian, Jacobian and what is active at the solution."""
     path, program = sampler.path, sampler.path.program
-    where, rows, functions = program.layout, program.rows, program.functions
-    z, constants = path.z / program.scale, list(program.compiled.constants)
+    where, rows, numbers = program.layout, program.rows, program.numbers
+    z = path.z / program.scale
     size = abs(program.value_scale)
     multipliers = path.row_multipliers * program.row_scale / size
     bounds = path.bound_multipliers * program.scale / size
     hessian, metric = second_variation(sampler)
-    g, jacobian = functions["jac_g"](z, constants)
-    values = np.asarray(g).ravel()
+    jacobian = numbers.jacobian_pattern.filled(numbers.jacobian(z))
+    values = numbers.constraints(z)
     share = sampler.value_size / size
     weight = where.measures * np.abs((path.places[where.stretch + 1] - path.places[where.stretch]) / sampler.span)
     fixed = program.lower == program.upper
     held = np.zeros(where.size, bool)
     held[where.controls] = fixed[where.controls]  # arcs on a bound: not given, so they have to be pushed against it
-    pull = -(np.asarray(functions["grad_f"](z, constants)[1]).ravel() + _matrix(jacobian).T @ multipliers)
+    pull = -(numbers.gradient(z) + jacobian.T @ multipliers)
     bounds = np.where(held, pull, bounds)
     fixed &= ~held
     resting = ~fixed & (held | (z - program.lower <= AT_BOUND) | (program.upper - z <= AT_BOUND))
@@ -96,7 +96,7 @@ def second_order(sampler: Sampler) -> Second:
     border[where.nodes[-2].min(initial=where.size) :] = True  # the last interval, places, parameters, integrals
     if not sampler.point.states:
         border[where.controls[where.first[-2], 0] :] = True
-    return Second(hessian, _matrix(jacobian).tocsr(), metric, fixed, resting, pushed, equalities, at_limit, forced,
+    return Second(hessian, jacobian.tocsr(), metric, fixed, resting, pushed, equalities, at_limit, forced,
                   long, border)  # fmt: skip
 
 
@@ -104,8 +104,8 @@ def hessian_of_program(sampler: Sampler) -> sp.csc_matrix:
     """The second derivatives of the program's own Lagrangian, whose quadrature is at the collocation points."""
     path, program = sampler.path, sampler.path.program
     multipliers = path.row_multipliers * program.row_scale / abs(program.value_scale)
-    upper = _matrix(program.functions["hess_lag"](path.z / program.scale, list(program.compiled.constants), 1.0,
-                                                  multipliers))  # fmt: skip
+    numbers = program.numbers
+    upper = numbers.hessian_pattern.filled(numbers.hessian(path.z / program.scale, 1.0, multipliers))
     return (upper + sp.triu(upper, 1).T).tocsc()
 
 
@@ -120,12 +120,6 @@ def _pushed_throughout(sampler: Sampler, resting: Flags, bounds: Array, least: A
     whole = np.minimum.reduceat(np.where(resting[controls], push, -np.inf), first, axis=0) >= -least.max()
     whole &= np.add.reduceat(push, first, axis=0) > np.add.reduceat(least, first)[:, None]
     return np.asarray(np.repeat(whole, np.diff(where.first), axis=0))
-
-
-def _matrix(value: object) -> sp.csc_matrix:
-    pattern = value.sparsity()  # type: ignore[attr-defined]
-    return sp.csc_matrix((np.array(value.nonzeros()), np.array(pattern.row()), np.array(pattern.colind())),  # type: ignore[attr-defined]
-                         shape=pattern.shape)  # fmt: skip
 
 
 def count_negative(

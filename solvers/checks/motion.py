@@ -18,7 +18,8 @@ import numpy as np
 from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
-from solvers.checks.sampling import HALF_WEIGHTS, Sampler, mapped
+from solvers.checks.sampling import HALF_WEIGHTS, Sampler
+from solvers.evaluation import mapped
 from solvers.solution import Check, Status
 
 Array = NDArray[np.float64]

@@ -117,14 +117,13 @@ def _chosen_anew(path: Trajectory, arcs: list[Arc], calm: Indices, forwards: boo
     """Multipliers with the limits dropped; None where they are not determined."""
     program, where = path.program, path.program.layout
     size = abs(program.value_scale)
-    z, constants = path.z / program.scale, list(program.compiled.constants)
-    gradient = np.asarray(program.functions["grad_f"](z, constants)[1]).ravel()
-    g, slopes = program.functions["jac_g"](z, constants)
-    jacobian = slopes.sparse().tocsc()
+    z, numbers = path.z / program.scale, program.numbers
+    gradient = numbers.gradient(z)
+    jacobian = numbers.jacobian_pattern.filled(numbers.jacobian(z))
     rows = path.row_multipliers * program.row_scale / size
     bounds = path.bound_multipliers * program.scale / size
     if len(calm):
-        values = np.asarray(g).ravel()
+        values = numbers.constraints(z)
         active = np.minimum(values - program.row_lower, program.row_upper - values) <= RESTING
         _without_calm(path, jacobian, gradient + bounds, rows, calm, active)
     for arc in arcs:

@@ -9,12 +9,12 @@ from __future__ import annotations
 from dataclasses import dataclass
 from functools import cached_property
 
-import casadi as ca
 import numpy as np
 from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
 from solvers.checks.adjoint import Continued, continued
+from solvers.evaluation import mapped
 from solvers.limits import quantity_bounds
 from solvers.lowering import primed
 from solvers.problem import Seek
@@ -27,21 +27,6 @@ _NODES, _WEIGHTS = legendre.leggauss(6)
 HALVES = np.concatenate([(_NODES + 1) / 4, (_NODES + 3) / 4])
 """Gauss points of both halves of an interval: none of them is a collocation point of any scheme in use."""
 HALF_WEIGHTS = np.concatenate([_WEIGHTS, _WEIGHTS]) / 4
-
-
-def mapped(function: ca.Function, *arguments: Array) -> Array:
-    """A CasADi function of columns at P rows of arguments: P x outputs.  Undefined values come as NaN."""
-    count = len(arguments[0])
-    result = np.zeros((count, int(function.numel_out(0))))
-    if result.size == 0:
-        return result
-    buffer, evaluate = function.map(count).buffer()
-    held = [np.ascontiguousarray(argument, dtype=float) for argument in arguments]
-    for index, argument in enumerate(held):
-        buffer.set_arg(index, memoryview(argument))  # type: ignore[arg-type,call-arg]
-    buffer.set_res(0, memoryview(result))  # type: ignore[arg-type,call-arg]
-    evaluate()
-    return result
 
 
 @dataclass(frozen=True, slots=True)

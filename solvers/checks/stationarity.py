@@ -23,8 +23,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from solvers.checks.adjoint import variation
-from solvers.checks.sampling import Sampler, mapped
+from solvers.checks.sampling import Sampler
 from solvers.collocation import Family
+from solvers.evaluation import mapped
 from solvers.limits import constants_of, interval_of
 from solvers.solution import Check, Status
 

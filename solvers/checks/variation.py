@@ -12,7 +12,8 @@ import scipy.sparse as sp
 from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
-from solvers.checks.sampling import HALF_WEIGHTS, HALVES, Sample, Sampler, mapped
+from solvers.checks.sampling import HALF_WEIGHTS, HALVES, Sample, Sampler
+from solvers.evaluation import mapped
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]

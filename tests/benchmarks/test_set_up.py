@@ -42,7 +42,7 @@ def seconds_to_first_iteration(intervals: int) -> float:
     where = layout(compiled, mesh)
     guess = guesses(compiled, mesh, where)[0]
     scales = find_scales(compiled, where, guess.z)
-    program = transcribe(compiled, mesh, scales, find_row_sizes(compiled, where, scales, guess.z))
+    program = transcribe(compiled, mesh, where, scales, find_row_sizes(compiled, where, scales, guess.z))
     minimise(program, Start(guess.z / program.scale), watch=stop)
     return reached[0] - began
 

@@ -94,7 +94,7 @@ def program_of(problem, mesh=None, z=None):
     where = layout(functions, mesh)
     values = start_of(problem, mesh) if z is None else z
     scales = find_scales(functions, where, values)
-    return transcribe(functions, mesh, scales, find_row_sizes(functions, where, scales, values))
+    return transcribe(functions, mesh, where, scales, find_row_sizes(functions, where, scales, values))
 
 
 def solved_on(problem, mesh=None, z=None):

@@ -23,15 +23,14 @@ def test_first_order_conditions_hold_at_the_minimum():
                      functional={"integrand": "(u - 3*t)^2"}, endpoints=["x(0) = 0"])  # fmt: skip
     program, minimum = minimum_of(problem)
     assert minimum.outcome is Outcome.SOLVED
-    _, gradient = program.functions["grad_f"](minimum.z, [])
-    g, jacobian = program.functions["jac_g"](minimum.z, [])
-    residual = np.asarray(gradient).ravel() + np.asarray(jacobian.T @ minimum.multipliers).ravel()
-    residual += minimum.bound_multipliers
+    numbers = program.numbers
+    pushed = numbers.jacobian_pattern.times_from_left(minimum.multipliers, numbers.jacobian(minimum.z))
+    residual = numbers.gradient(minimum.z) + pushed + minimum.bound_multipliers
     free = program.lower < program.upper  # the multipliers of fixed variables are not computed
     np.testing.assert_allclose(residual[free], 0, atol=1e-7)
     for value, lower, upper, push in (
         (minimum.z, program.lower, program.upper, minimum.bound_multipliers),
-        (np.asarray(g).ravel(), program.row_lower, program.row_upper, minimum.multipliers),
+        (numbers.constraints(minimum.z), program.row_lower, program.row_upper, minimum.multipliers),
     ):
         off_upper, off_lower = upper - value > 1e-4, value - lower > 1e-4
         assert np.all(push[off_upper & (lower < upper)] <= 1e-6)

@@ -94,12 +94,43 @@ def at(program):
     return z, rng.normal(), rng.normal(size=program.rows.count)
 
 
-def own(program, name, *arguments):
-    return program.functions[name](*arguments)
+def written_out(program):
+    """f and g as expressions of z, one point and one interval after the other, as the guide to `Program` says."""
+    compiled, where, scale = program.compiled, program.layout, program.scale
+    z, constants, n = ca.SX.sym("z", where.size), list(program.compiled.constants), program.compiled.point.states
+    physical = z * ca.DM(scale)
+    defects, ends, bodies, totals = [], [], [], 0
+    for k, piece in enumerate(program.mesh.intervals):
+        points = range(where.first[k], where.first[k + 1])
+        support = ca.horzcat(*(physical[indices.tolist()] for indices in (where.nodes[k], *where.inner[points])))
+        for local, point in enumerate(points):
+            places = physical[where.places[piece.stretch : piece.stretch + 2].tolist()]
+            v = ca.vertcat(support[:, local + 1], physical[where.controls[point].tolist()], places,
+                           physical[where.parameters.tolist()])  # fmt: skip
+            outputs = compiled.point.value(v, [where.fractions[point], *constants])
+            slope = ca.mtimes(support, ca.DM(piece.scheme.differentiate[local]))
+            defects.append(slope - piece.width * outputs[:n])
+            bodies.append(outputs[n : n + compiled.point.constraints])
+            totals += where.measures[point] * outputs[n + compiled.point.constraints :]
+        if piece.scheme.family is Family.GAUSS:
+            ends.append(ca.mtimes(support, ca.DM(piece.scheme.extrapolate)) - physical[where.nodes[k + 1].tolist()])
+    rims = []
+    for control, place, _ in compiled.rims:
+        owner = int(where.at_place[place]) - (1 if place else 0)
+        modes = program.mesh.intervals[owner].scheme.control_modes
+        values = physical[where.controls[where.first[owner] : where.first[owner + 1], control].tolist()]
+        signs = [1.0 if place else (-1.0) ** k for k in range(len(modes))]
+        rims.append(ca.mtimes(ca.DM(signs).T, ca.mtimes(ca.DM(modes), values)))
+    integrals = ca.vertcat(*(physical[int(k)] for k in where.integrals))
+    outside = compiled.end.value(physical[program.end_gather.tolist()], constants)
+    g = ca.vertcat(
+        *defects, *ends, *bodies, *rims, integrals - ca.vertcat(*ca.vertsplit(totals)[:-1]), *ca.vertsplit(outside)[:-1]
+    ) / ca.DM(program.row_scale)
+    return z, (totals[-1] + outside[-1]) / program.value_scale, g
 
 
-def automatic(program, expression, *inputs):
-    return ca.Function("automatic", [program.functions["z"], program.functions["c"], *inputs], [expression])
+def at_point(symbols, expression, values):
+    return np.asarray(ca.densify(ca.Function("written_out", [symbols], [expression])(values)))
 
 
 def close(found, wanted):
@@ -111,35 +142,38 @@ def moving(program):
     return np.flatnonzero(program.lower < program.upper)
 
 
-def test_gradient(program, at):
-    constants = list(program.compiled.constants)
-    f, gradient = own(program, "grad_f", at[0], constants)
-    close(f, automatic(program, program.functions["f"])(at[0], constants))
-    wanted = automatic(program, ca.gradient(program.functions["f"], program.functions["z"]))(at[0], constants)
-    close(np.asarray(gradient)[moving(program)], np.asarray(ca.densify(wanted))[moving(program)])
+def test_value_and_gradient(program, at):
+    z, f, _ = written_out(program)
+    close(program.numbers.value(at[0]), at_point(z, f, at[0])[0, 0])
+    wanted = at_point(z, ca.gradient(f, z), at[0]).ravel()
+    close(program.numbers.gradient(at[0])[moving(program)], wanted[moving(program)])
 
 
-def test_jacobian(program, at):
-    constants = list(program.compiled.constants)
-    g, jacobian = own(program, "jac_g", at[0], constants)
-    assert g.shape == (program.rows.count, 1)
-    close(g, automatic(program, program.functions["g"])(at[0], constants))
-    wanted = automatic(program, ca.jacobian(program.functions["g"], program.functions["z"]))(at[0], constants)
+def test_constraints_and_jacobian(program, at):
+    z, _, g = written_out(program)
+    close(program.numbers.constraints(at[0]), at_point(z, g, at[0]).ravel())
+    found = program.numbers.jacobian_pattern.filled(program.numbers.jacobian(at[0])).toarray()
     free = moving(program)
-    close(np.asarray(ca.densify(jacobian))[:, free], np.asarray(ca.densify(wanted))[:, free])
+    close(found[:, free], at_point(z, ca.jacobian(g, z), at[0])[:, free])
 
 
 def test_hessian_of_the_lagrangian_is_its_upper_triangle(program, at):
-    constants = list(program.compiled.constants)
-    z, weight_f, weights = at
-    found = own(program, "hess_lag", z, constants, weight_f, weights)
-    symbols = ca.MX.sym("lam_f"), ca.MX.sym("lam_g", program.rows.count)
-    lagrangian = symbols[0] * program.functions["f"] + ca.dot(symbols[1], program.functions["g"])
-    hessian = ca.hessian(lagrangian, program.functions["z"])[0]
-    wanted = automatic(program, hessian, *symbols)(z, constants, weight_f, weights)
+    values, weight_f, weights = at
+    z, f, g = written_out(program)
+    found = program.numbers.hessian_pattern.filled(program.numbers.hessian(values, weight_f, weights)).toarray()
+    wanted = at_point(z, ca.hessian(weight_f * f + ca.dot(ca.DM(weights), g), z)[0], values)
     free = np.ix_(moving(program), moving(program))
-    assert np.all(np.tril(np.asarray(ca.densify(found)), -1) == 0)
-    close(np.asarray(ca.densify(found))[free], np.triu(np.asarray(ca.densify(wanted)))[free])
+    assert np.all(np.tril(found, -1) == 0)
+    close(found[free], np.triu(wanted)[free])
+
+
+def test_numbers_at_one_place_forget_those_at_another(program, at):
+    numbers, z = program.numbers, at[0]
+    before = numbers.value(z), numbers.constraints(z), numbers.jacobian(z)
+    numbers.value(1.01 * z)
+    numbers.jacobian(1.01 * z)
+    for found, wanted in zip((numbers.value(z), numbers.constraints(z), numbers.jacobian(z)), before, strict=True):
+        np.testing.assert_array_equal(found, wanted)
 
 
 def test_the_hessian_counts_an_end_place_in_the_dynamics_on_the_diagonal():
@@ -147,8 +181,8 @@ def test_the_hessian_counts_an_end_place_in_the_dynamics_on_the_diagonal():
     program = program_of(PROBLEMS["end place in the dynamics"](), mixed_mesh())
     place = int(program.layout.places[-1])
     assert place in program.layout.parameters
-    pattern = program.functions["hess_lag"].sparsity_out(0)
-    assert pattern.has_nz(place, place)
+    pattern = program.numbers.hessian_pattern
+    assert place in pattern.rows[pattern.starts[place] : pattern.starts[place + 1]]
 
 
 def test_indices_of_the_layout_are_a_partition(program):
@@ -197,45 +231,14 @@ def test_an_exact_polynomial_has_no_defect():
     z = np.zeros(where.size)
     z[where.places] = [0, 1]
     z[where.nodes[:, 0]], z[where.inner[:, 0]], z[where.controls[:, 0]] = breaks**4, points**4, 4 * points**3
-    f, _ = own(program, "grad_f", z / program.scale, [])
-    g, _ = own(program, "jac_g", z / program.scale, [])
-    np.testing.assert_allclose(np.asarray(g), 0, atol=1e-13)
-    assert float(f) * program.value_scale == pytest.approx(16 / 7, rel=1e-13)
+    np.testing.assert_allclose(program.numbers.constraints(z / program.scale), 0, atol=1e-13)
+    assert program.numbers.value(z / program.scale) * program.value_scale == pytest.approx(16 / 7, rel=1e-13)
 
 
 def test_a_maximum_is_the_minimum_of_the_opposite():
     least, greatest = (program_of(stated(functional={"seek": seek, "integrand": "u^2"})) for seek in
                        ("minimum", "maximum"))  # fmt: skip
     z = np.random.default_rng(3).normal(size=least.layout.size)
-    f = [float(own(program, "grad_f", z / program.scale, [])[0]) for program in (least, greatest)]
+    f = [program.numbers.value(z / program.scale) for program in (least, greatest)]
     assert f[0] == -f[1]
     assert least.value_scale == -greatest.value_scale > 0
-
-
-def graph_sizes(program):
-    return [program.functions[name].n_nodes() for name in ("grad_f", "jac_g", "hess_lag")]
-
-
-def test_the_graph_of_the_program_does_not_grow_with_the_mesh():
-    """All cost of set-up that depends on the mesh is in constant arrays."""
-    problem = PROBLEMS["parameters"]()
-    few, many = (program_of(problem, uniform(1, count, degree)) for count, degree in ((2, 2), (50, 5)))
-    assert many.layout.size > 30 * few.layout.size
-    assert graph_sizes(few) == graph_sizes(many)
-    assert max(graph_sizes(many)) < 100
-
-
-def test_the_graph_does_not_grow_with_the_number_of_intervals():
-    problem = PROBLEMS["parameters"]()
-    sizes = [graph_sizes(program_of(problem, uniform(1, count, 3))) for count in (3, 60)]
-    np.testing.assert_allclose(*sizes, atol=1)  # CasADi may put in a copy
-
-
-def test_the_cases_reach_every_kind_of_row():
-    kinds = {name: compiled(build()) for name, build in PROBLEMS.items()}
-    assert len(kinds["control at an end"].rims) == 2
-    assert len(kinds["implicit dynamics"].pointwise) == 1
-    assert len(kinds["pointwise constraints"].pointwise) == 2
-    assert kinds["integral conditions"].point.integrals == 2
-    assert len(kinds["way points"].fixed) == 3
-    assert len(kinds["way points"].conditions) == 2

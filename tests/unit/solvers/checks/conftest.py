@@ -55,7 +55,7 @@ def _program(document, intervals, degree):
     z = np.ones(where.size)
     z[where.places] = np.linspace(0, 1, len(where.places))
     scales = find_scales(compiled, where, z)
-    return transcribe(compiled, mesh, scales, find_row_sizes(compiled, where, scales, z))
+    return transcribe(compiled, mesh, where, scales, find_row_sizes(compiled, where, scales, z))
 
 
 def _trajectory(program, z, multipliers, value=0.0):
@@ -89,18 +89,18 @@ def stationary():
         z = np.zeros(program.layout.size)
         fixed = program.lower == program.upper
         z[fixed] = program.lower[fixed]
-        constants = list(program.compiled.constants)
-        gradient = np.asarray(program.functions["grad_f"](z, constants)[1]).ravel()
-        g, jacobian = program.functions["jac_g"](z, constants)
-        upper = program.functions["hess_lag"](z, constants, 1.0, np.zeros(program.rows.count)).sparse()
+        numbers = program.numbers
+        gradient, g = numbers.gradient(z), numbers.constraints(z)
+        jacobian = numbers.jacobian_pattern.filled(numbers.jacobian(z))
+        upper = numbers.hessian_pattern.filled(numbers.hessian(z, 1.0, np.zeros(program.rows.count)))
         hessian = upper + sp.triu(upper, 1).T
         free = np.flatnonzero(~fixed)
-        jacobian = jacobian.sparse()[:, free]
+        jacobian = jacobian[:, free]
         matrix = sp.bmat([[hessian[free][:, free], jacobian.T], [jacobian, None]], format="csc")
-        right = np.concatenate([-gradient[free], program.row_lower - np.asarray(g).ravel()])
+        right = np.concatenate([-gradient[free], program.row_lower - g])
         step = spsolve(matrix, right)
         z[free] += step[: len(free)]
-        value = float(program.functions["grad_f"](z, constants)[0])
+        value = numbers.value(z)
         return _trajectory(program, z, step[len(free) :], value)
 
     return make

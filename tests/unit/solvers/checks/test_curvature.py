@@ -110,7 +110,7 @@ def test_the_second_variation_is_the_programs_where_quadrature_is_exact(stationa
     program = path.program
     form, metric = second_variation(Sampler(path))
     rows = path.row_multipliers * program.row_scale / abs(program.value_scale)
-    upper = program.functions["hess_lag"](path.z / program.scale, [], 1.0, rows).full()
+    upper = program.numbers.hessian_pattern.filled(program.numbers.hessian(path.z / program.scale, 1.0, rows)).toarray()
     expected = np.triu(upper) + np.triu(upper, 1).T
     inside = np.concatenate(
         [program.layout.nodes[:1].ravel(), program.layout.inner.ravel(), program.layout.controls.ravel()]
