@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import gc
 import json
+import os
 import sys
 from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
@@ -16,6 +17,8 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import click
+
+from service.threads import ONE_THREAD
 
 if TYPE_CHECKING:
     from service.complaints import Refused
@@ -34,6 +37,7 @@ REFUSED = 2
 @click.version_option(package_name="curvewright")
 def main() -> None:
     """Optimal curves, shapes and motions with their evidence."""
+    os.environ.update(ONE_THREAD)
 
 
 @main.command()

@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from solvers.entries import Entries, Pattern
-from solvers.ipopt import Iterate, Minimum, Start, minimise
+from solvers.ipopt import LEAST_SQUARES_MULTIPLIERS, Iterate, Minimum, Start, minimise
 from solvers.lowering import Quantity, primed
 from solvers.solution import Finding
 from solvers.transcription import Program
@@ -170,7 +170,7 @@ def least_violation(
         numbers=_Numbers(program, hard, relaxed, held, owners, signs, len(parts)),
     )
     start = np.concatenate([z, np.ones(len(parts))])
-    minimum = minimise(elastic, Start(start), time_limit=time_limit, watch=watch)
+    minimum = minimise(elastic, Start(start), time_limit=time_limit, watch=watch, options=LEAST_SQUARES_MULTIPLIERS)
     answer, amounts = minimum.z[:size], minimum.z[size:]
     findings = _findings(program, parts, owner_of_variable, answer, amounts)
     return LeastViolation(answer, float(np.sum(amounts[amounts > 1e-7])), findings, minimum)

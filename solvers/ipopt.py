@@ -112,6 +112,9 @@ OPTIONS: dict[str, Any] = {
     "error_on_fail": False,
 }
 
+LEAST_SQUARES_MULTIPLIERS: dict[str, Any] = {"ipopt.constr_mult_init_max": 1000.0}
+"""First multipliers by least squares: another try where those of zero lead nowhere."""
+
 WARM: dict[str, Any] = {
     "ipopt.warm_start_init_point": "yes",
     "ipopt.mu_strategy": "monotone",

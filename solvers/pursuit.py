@@ -16,7 +16,7 @@ from solvers.collocation import Family
 from solvers.elastic import LeastViolation, least_violation
 from solvers.functions import Compiled, compile_problem
 from solvers.guess import guesses
-from solvers.ipopt import Iterate, Minimum, Outcome, Start, minimise
+from solvers.ipopt import LEAST_SQUARES_MULTIPLIERS, Iterate, Minimum, Outcome, Start, minimise
 from solvers.layout import Layout, layout
 from solvers.lowering import lower
 from solvers.mesh import Mesh, interval, uniform
@@ -245,7 +245,7 @@ SOLVED = (Outcome.SOLVED, Outcome.ACCEPTABLE)
 
 ATTEMPTS: tuple[dict[str, Any], ...] = (
     {},
-    {"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 0.1},
+    {"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 0.1} | LEAST_SQUARES_MULTIPLIERS,
     {"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 1e-3, "ipopt.nlp_scaling_method": "gradient-based"},
 )
 """Settings of the minimiser that are tried in turn on the first mesh."""

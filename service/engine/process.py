@@ -12,13 +12,11 @@ from collections.abc import Mapping
 from typing import Any
 
 from service.engine.frames import Frame, FrameError, Unpacker, pack
+from service.threads import ONE_THREAD
 
 _PAGE = os.sysconf("SC_PAGE_SIZE")
 _TAIL = 4000  # bytes of the child's output kept for the log
 _SEND_SECONDS = 5.0  # a child that does not read for so long is as good as dead
-
-# One thread per child: several slots share the cores, and results do not depend on how many there are.
-_ONE_THREAD = dict.fromkeys(("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS"), "1")
 
 
 class ChildGoneError(Exception):
@@ -42,7 +40,7 @@ class Process:
                 stdout=subprocess.PIPE,
                 stderr=subprocess.STDOUT,
                 pass_fds=[theirs.fileno()],
-                env=os.environ | _ONE_THREAD,
+                env=os.environ | ONE_THREAD,
                 start_new_session=True,
             )
         assert self._process.stdout is not None

@@ -3,15 +3,18 @@
 from __future__ import annotations
 
 import multiprocessing
+import os
 import time
 from dataclasses import dataclass, replace
 from math import inf
 from multiprocessing.connection import Connection
 from pathlib import Path
 
+from service.threads import ONE_THREAD
 from solvers.solution import Status, Verdict
 from tests.acceptance.records import Figure
 
+os.environ.update(ONE_THREAD)
 PROCESSES = multiprocessing.get_context("forkserver")
 PROCESSES.set_forkserver_preload(["service.assemble", "solvers.solve", __name__])
 
