@@ -17,7 +17,7 @@ from typing import Any
 from service.spec import Document
 from solvers.curve import Curve
 from solvers.problem import Condition, Problem
-from solvers.solution import Check, Diagnosis, Finding, MeshStep, Price, Solution
+from solvers.solution import Check, Diagnosis, Extremal, Finding, MeshStep, Price, Solution
 from solvers.units import PLAIN, Unit
 from web.unit_text import per
 
@@ -52,10 +52,7 @@ def result_document(
         "value": _in(solution.value, problem.value_unit),
         "value_error": _in(solution.value_error, problem.value_unit),
         "value_unit": problem.value_unit.text,
-        "parameters": {
-            name: {"value": _in(value, units.parameter(name)), "unit": units.parameter(name).text}
-            for name, value in solution.parameters.items()
-        },
+        "parameters": _parameters(solution, units),
         "checks": [_check(check, problem) for check in solution.checks],
         "curve": _curve(solution, problem, units),
         "multipliers": {
@@ -63,6 +60,7 @@ def result_document(
             "prices": [_price(price, problem, units) for price in solution.prices],
         },
         "slopes": [],
+        "extremals": [_extremal(extremal, problem, units) for extremal in solution.extremals],
         "diagnosis": _diagnosis(solution.diagnosis, problem, units),
         "notes": list(solution.notes),
         "reading": dict(reading),
@@ -152,6 +150,26 @@ def _pieces(curve: Curve, units: Mapping[str, Unit], independent: Unit) -> list[
             },
         }
     ]
+
+
+def _parameters(solution: Solution, units: _Units) -> dict[str, Any]:
+    return {
+        name: {"value": _in(value, units.parameter(name)), "unit": units.parameter(name).text}
+        for name, value in solution.parameters.items()
+    }
+
+
+def _extremal(extremal: Extremal, problem: Problem, units: _Units) -> dict[str, Any]:
+    found = extremal.solution
+    return {
+        "verdict": found.verdict.value if found.verdict else None,
+        "value": _in(found.value, problem.value_unit),
+        "value_error": _in(found.value_error, problem.value_unit),
+        "parameters": _parameters(found, units),
+        "starts": list(extremal.starts),
+        "checks": [_check(check, problem) for check in found.checks],
+        "curve": _curve(found, problem, units),
+    }
 
 
 def _curve(solution: Solution, problem: Problem, units: _Units) -> dict[str, Any] | None:

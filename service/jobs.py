@@ -75,6 +75,7 @@ def progress_event(progress: Progress, problem: Problem) -> dict[str, Any]:
     """A sign of life in the user's units, as JSON."""
     event: dict[str, Any] = {
         "kind": progress.kind,
+        "start": progress.start,
         "mesh": progress.mesh,
         "intervals": progress.intervals,
         "points": progress.points,

@@ -245,6 +245,18 @@ class ReadingDocument(Part):
     notes: list[str]
 
 
+class ExtremalFound(Part):
+    """One of the distinct curves that several starts led to."""
+
+    verdict: Verdict | None
+    value: float | None
+    value_error: float | None
+    parameters: dict[str, Amount]
+    starts: list[str] = Field(description="the starts that led there")
+    checks: list[CheckResult]
+    curve: CurveDocument | None
+
+
 class ResultDocument(Part):
     """What a run leaves behind; all numbers in the user's units, null where there is no finite number."""
 
@@ -262,6 +274,9 @@ class ResultDocument(Part):
     curve: CurveDocument | None
     multipliers: Multipliers
     slopes: list[dict[str, Any]]
+    extremals: list[ExtremalFound] = Field(
+        default=[], description="what several starts led to, the best (the result itself) first; empty for one start"
+    )
     diagnosis: DiagnosisDocument | None
     notes: list[str]
     reading: ReadingDocument

@@ -88,6 +88,13 @@ def _lines(result: Mapping[str, Any]) -> Iterator[str]:
         yield "Checks"
         for check in result["checks"]:
             yield from _check(check, result)
+    if len(result.get("extremals") or ()) > 1:
+        yield ""
+        yield "Curves found from other starts"
+        for found in result["extremals"]:
+            value = display.joined(display.with_error(found["value"], found["value_error"]), result["value_unit"])
+            count = len(found["starts"])
+            yield f"  {found['verdict'] or 'no verdict':<16}{value}, {count} start{'s' if count > 1 else ''}"
     if prices := result["multipliers"]["prices"]:
         yield ""
         yield "Prices (change of the value per unit of the limit)"

@@ -47,6 +47,7 @@ def guesses(compiled: Compiled, mesh: Mesh, where: Layout) -> list[Guess]:
     for index, place in zip(where.places, places, strict=True):
         parameters[where.parameters == index] = place
     _size_parameters(compiled, mesh, where, places, parameters)
+    _vary_parameters(problem, places, parameters, where)
     found = [_guess(compiled, mesh, where, places, parameters, Bend())]
     if found[0].violation > 1e-3:
         found += [_guess(compiled, mesh, where, places, parameters, bend) for bend in BENDS]
@@ -112,6 +113,35 @@ def _size_parameters(compiled: Compiled, mesh: Mesh, where: Layout, places: Arra
     # The size nearest to one among those that fit as well as the best.
     good = [power for power, misfit in zip(POWERS, misfits, strict=True) if misfit <= 1.1 * least]
     parameters[open_ended] = base[open_ended] * 10.0 ** min(good, key=abs)
+
+
+def _vary_parameters(problem: Problem, places: Array, parameters: Array, where: Layout) -> None:
+    """Move parameters through their ranges, or within a factor of four where these are open; places go with theirs."""
+    for k, parameter in enumerate(problem.parameters):
+        share = problem.start.parameters.get(parameter.name)
+        if share is None:
+            continue
+        lower, upper = parameter.lower, parameter.upper
+        if not np.isfinite(upper - lower):
+            moved = parameters[k] * 4.0 ** (2 * share - 1)
+        elif lower > 0 and upper > 20 * lower:
+            moved = lower * (upper / lower) ** share
+        else:
+            moved = lower + share * (upper - lower)
+        parameters[k] = np.clip(moved, lower, upper)
+    _order_places(places, parameters, where)
+
+
+def _order_places(places: Array, parameters: Array, where: Layout) -> None:
+    """Places that are parameters, unless these would leave them out of order: then the parameters stay as they are."""
+    free = {k: at for at, index in enumerate(where.places) for k in np.flatnonzero(where.parameters == index)}
+    moved = places.copy()
+    for k, at in free.items():
+        moved[at] = parameters[k]
+    if np.all(np.diff(moved) > 0):
+        places[:] = moved
+    for k, at in free.items():
+        parameters[k] = places[at]
 
 
 def _misfit(compiled: Compiled, where: Layout, z: Array) -> float:

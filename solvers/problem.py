@@ -7,6 +7,7 @@ abbreviation and its place is one of `Problem.places`.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, field
 from enum import Enum
 
@@ -149,6 +150,19 @@ class Calm:
 
 
 @dataclass(frozen=True, slots=True)
+class Variation:
+    """How a start differs from the default guess.
+
+    `modes` has, by unknown, the amplitudes of the waves that are added, the longest wave first, relative to the
+    unknown's size; `parameters` has shares of the range of a parameter (0 to 1).
+    """
+
+    label: str = "default guess"
+    modes: Mapping[str, tuple[float, ...]] = field(default_factory=dict)
+    parameters: Mapping[str, float] = field(default_factory=dict)
+
+
+@dataclass(frozen=True, slots=True)
 class Options:
     """How far to go.  `tolerance` is relative, for the curve and for the value; `points` limits the mesh."""
 
@@ -178,6 +192,7 @@ class Problem:
     held: tuple[Held, ...] = ()  # found by the solver, never given by the user
     touches: tuple[Touch, ...] = ()  # the same
     calm: tuple[Calm, ...] = ()  # the same
+    start: Variation = field(default_factory=Variation)  # the same
     options: Options = field(default_factory=Options)
     independent_unit: Unit = PLAIN
     value_unit: Unit = PLAIN

@@ -21,7 +21,7 @@ from solvers.evaluation import mapped
 from solvers.functions import linear_controls
 from solvers.limits import constants_of, interval_of, quantity_bounds
 from solvers.mesh import Interval, Mesh, interval
-from solvers.trajectory import Trajectory
+from solvers.trajectory import Trajectory, sizes_of
 
 Array = NDArray[np.float64]
 
@@ -63,7 +63,8 @@ def estimate(path: Trajectory) -> Estimate:
     calm = {(c.stretch, lowered.controls.index((c.name, c.order))) for c in lowered.problem.calm}
     mesh = path.program.mesh
     weights = np.minimum(1.0, np.diff(path.breaks) / (path.breaks[-1] - path.breaks[0]))
-    state_sizes, control_sizes = _sizes(path.states), _sizes(path.controls)
+    scales = path.program.scales
+    state_sizes, control_sizes = sizes_of(path.states, scales.states), sizes_of(path.controls, scales.controls)
     errors = np.zeros(len(mesh.intervals))
     shapes, bends = [], []
     for k, (states, controls) in enumerate(zip(path.state_modes(), path.control_modes(), strict=True)):
@@ -101,7 +102,10 @@ def _add_excess(path: Trajectory, errors: Array) -> None:
     if not bounded.any() and not unequal.any():
         return
     states = np.stack([legendre.legvander(BETWEEN, len(modes) - 1) @ modes for modes in path.state_modes()])
-    excess = np.maximum(lower - states, states - upper)[:, :, bounded] / _sizes(path.states)[bounded]
+    excess = (
+        np.maximum(lower - states, states - upper)[:, :, bounded]
+        / sizes_of(path.states, path.program.scales.states)[bounded]
+    )
     errors[:] = np.maximum(errors, excess.max(axis=(1, 2), initial=0.0))
     if unequal.any():
         bodies = _bodies_between(path, states)[:, :, unequal]
@@ -128,11 +132,6 @@ def _bodies_between(path: Trajectory, states: Array) -> Array:
     outputs = mapped(compiled.point.value, v.reshape(count, -1), d.reshape(count, -1))
     first = compiled.point.states
     return outputs[:, first : first + compiled.point.constraints].reshape(*shape[:2], -1)
-
-
-def _sizes(values: Array) -> Array:
-    sizes = np.abs(values).max(axis=0, initial=0.0)
-    return np.where(sizes > 0, sizes, 1.0)
 
 
 def _tail(columns: Array) -> tuple[float, int]:

@@ -59,6 +59,11 @@ def sketch(compiled: Compiled, mesh: Mesh, where: Layout, places: Array, paramet
             rows = _lines(unknown, grid, places, known, _between(*bounds[unknown.name, 0]))
             if bend.size and unknown.order:
                 _add(bend, rows, (grid - places[0]) / (places[-1] - places[0]), places[-1] - places[0], turn)
+        modes = problem.start.modes.get(unknown.name, ())
+        if modes:
+            held = {index for index, _ in known.get((unknown.name, 0), ())}
+            ends = (0 in held, len(places) - 1 in held)
+            _vary(modes, rows, grid - places[0], places[-1] - places[0], bounds[unknown.name, 0], ends)
         for order, row in enumerate(rows):
             quantity = (unknown.name, order)
             if quantity not in bounds:
@@ -135,6 +140,29 @@ def _add(bend: Bend, rows: list[Array], fraction: Array, span: float, turn: int)
     for k in range(order + 1):
         rows[k] = rows[k] + bend.size * size * polynomial.polyval(fraction, shape) / span**k
         shape = polynomial.polyder(shape)
+
+
+def _vary(
+    modes: tuple[float, ...],
+    rows: list[Array],
+    way: Array,
+    span: float,
+    bounds: tuple[float, float],
+    held: tuple[bool, bool],
+) -> None:
+    """Add waves as of a string whose ends are held or free: sin(k pi s), sin((k - 1/2) pi s) or cos((k - 1) pi s).
+
+    Their size is half the range of the bounds, else that of the unknown, else the length of the way.
+    """
+    size = (bounds[1] - bounds[0]) / 2
+    if not np.isfinite(size):
+        size = float(max(np.abs(rows[0]).max(), np.ptp(rows[0]))) or abs(span)
+    for count, amplitude in enumerate(modes):
+        waves = np.pi * (count + 1 - (2 - sum(held)) / 2)
+        phase = 0.0 if held[0] else np.pi / 2
+        for order, row in enumerate(rows):
+            wave = np.sin(waves * way / span + phase + order * np.pi / 2)
+            rows[order] = row + amplitude * size * (waves / span) ** order * wave
 
 
 def _given(

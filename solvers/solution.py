@@ -110,6 +110,7 @@ class Progress:
     infeasibility: float | None = None
     error: float | None = None
     breaks: tuple[float, ...] | None = None
+    start: int = 1  # which of several starts
 
 
 Watch = Callable[[Progress], bool]
@@ -138,3 +139,12 @@ class Solution:
     iterations: int = 0
     times: Mapping[str, float] = field(default_factory=dict)  # seconds per stage
     notes: tuple[str, ...] = ()  # what was done that the reader should know: abs smoothed, free ends found, ...
+    extremals: tuple[Extremal, ...] = ()  # what several starts led to, the best (this one) first
+
+
+@dataclass(frozen=True, slots=True)
+class Extremal:
+    """One of the curves that several starts led to, and the starts that led there."""
+
+    solution: Solution
+    starts: tuple[str, ...]

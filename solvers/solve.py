@@ -10,6 +10,7 @@ from solvers import checks
 from solvers.checks.redundancy import unambiguous
 from solvers.curve import Curve
 from solvers.diagnosis import diagnose
+from solvers.extremals import solve_from_starts
 from solvers.functions import compile_problem
 from solvers.gauge import Gauged, in_parametric_form
 from solvers.graph import as_graph, checks_on_graph, prices_of_original
@@ -17,7 +18,7 @@ from solvers.guess import guesses
 from solvers.layout import layout
 from solvers.lowering import lower
 from solvers.prices import prices
-from solvers.problem import Problem
+from solvers.problem import Problem, Seek
 from solvers.pursuit import End, Pursuit, first_mesh, go_on, pursue
 from solvers.scaling import find_scales
 from solvers.sharpen import sharpen
@@ -40,8 +41,19 @@ NEARLY = 30.0
 
 def solve(problem: Problem, watch: Watch | None = None) -> Solution:
     """Solve a problem.  Never raises for a numerical failure: that is an outcome with a diagnosis."""
+    if problem.options.starts > 1:
+        return solve_from_starts(problem, watch, _solve_once, _sizes(problem))
+    return _solve_once(problem, watch)
+
+
+def _solve_once(problem: Problem, watch: Watch | None) -> Solution:
+    """Solve a problem from its one start."""
     began = time.perf_counter()
     deadline = began + problem.options.time_limit
+    if problem.seek is Seek.STATIONARY:  # no jump can gain here, and Newton's method goes straighter in few variables
+        pursuit = _in_given_form(with_slacks(problem), watch, deadline)
+        if pursuit.end in (End.CONVERGED, End.STOPPED, End.TIME):
+            return _solution(problem, pursuit, None, began)
     for squared in (True, False):
         gauged = in_parametric_form(problem, _sizes(problem), squared)
         if gauged is None or (squared and not gauged.squared):

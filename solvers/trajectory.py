@@ -25,6 +25,9 @@ from solvers.transcription import Program
 
 Array = NDArray[np.float64]
 
+NOISE = 1e-8
+"""What is smaller than this, relative to its scale, is zero to the minimiser."""
+
 BINDING = 1e-5
 """Least push of a pointwise constraint that binds, over its size and relative to the value's."""
 
@@ -237,8 +240,13 @@ def distance(now: Trajectory, before: Trajectory) -> float:
         return 0.0
     now_at, before_at = _fractions(now), _fractions(before)
     values = _sample(before_at[0], before.state_modes(), now_at[1])
-    sizes = np.abs(now.states).max(axis=0)
-    return float((np.abs(values - now.states).max(axis=0) / np.where(sizes > 0, sizes, 1.0)).max())
+    differences = np.abs(values - now.states).max(axis=0)
+    return float((differences / sizes_of(now.states, now.program.scales.states)).max())
+
+
+def sizes_of(values: Array, scales: Array) -> Array:
+    """What errors of quantities (columns) are relative to: the largest value, where it is more than noise."""
+    return np.asarray(np.maximum(np.abs(values).max(axis=0, initial=0.0), NOISE * scales))
 
 
 def _fractions(path: Trajectory) -> tuple[Array, Array]:

@@ -38,6 +38,7 @@ def plots(result: Mapping[str, Any]) -> tuple[Plot, ...]:
         if costates is not None:
             named = {name: f"costate of {name}" for name in trajectory.stored}
             made += _grouped(costates, costates.stored, 0, "costate", "Multipliers", named)
+    made += _extremals(result)
     made += _history(result)
     if trajectory is not None:
         made += _mesh(trajectory)
@@ -137,6 +138,39 @@ def _path(trajectory: Trajectory) -> Iterable[Plot]:
         equal=True,
     )
     yield _unless_thin(plot)
+
+
+def _extremals(result: Mapping[str, Any]) -> Iterable[Plot]:
+    """Each unknown along all curves that several starts led to, one above the other."""
+    found = [(n, e, read_trajectory(e)) for n, e in enumerate(result.get("extremals") or (), start=1)]
+    shown = [(number, extremal, path) for number, extremal, path in found if path is not None][: len(LINES)]
+    if len(shown) < 2:
+        return
+    first = shown[0][2]
+    for name in first.names:
+        traces = [
+            Trace(f"{number}: {extremal['verdict'] or 'no verdict'}", *series(path, name), count)
+            for count, (number, extremal, path) in enumerate(shown)
+        ]
+        shares = np.linspace(0, 1, TABLE_ROWS)
+        columns = [_at_shares(path, name, shares) for _, _, path in shown]
+        unit = first.unit_of(name)
+        yield Plot(
+            key=_identifier(f"extremals-{name}"),
+            heading=f"{name} on the curves found",
+            finding=f"{name} along {len(shown)} of the {len(found)} curves found, in the order of the list.",
+            across=bracketed(first.independent, first.unit),
+            up=bracketed(name, unit),
+            traces=tuple(traces),
+            table=np.column_stack([shares, *columns]),
+            table_headings=("share of the range", *(bracketed(trace.label, unit) for trace in traces)),
+        )
+
+
+def _at_shares(path: Trajectory, name: str, shares: Array) -> Array:
+    """Values at shares of a curve's own range: free ends differ from curve to curve."""
+    places = path.start + shares * (path.end - path.start)
+    return np.concatenate([arc.evaluate(name, 0, some) for arc, some in path.by_arc(places)])
 
 
 def _history(result: Mapping[str, Any]) -> Iterable[Plot]:

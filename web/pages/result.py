@@ -15,6 +15,7 @@ from web.caution import CAUTION_IN_FULL
 from web.extremes import extremes
 from web.figures import Figure, figures
 from web.pages.evidence import Check, Diagnosis, check_of, diagnosis_of, parameters_of, prices_of, reach_of
+from web.pages.extremals import Found, found_by_starts
 from web.pages.handover import Preview, citation_of, facts_of, meshes_of, preview_of
 from web.pages.page import Page, told
 from web.pages.reading import Reading, reading_view, understood
@@ -24,6 +25,7 @@ from web.verdicts import tally, verdict_sentence
 
 EXPONENT_SIGNS = "⁰¹²³⁴⁵⁶⁷⁸⁹⁻"
 MAIN_FIGURES = ("curve", "path")
+EXTREMAL_FIGURES = "extremals"
 
 Pairs = tuple[tuple[str, str], ...]
 Rows = tuple[tuple[str, ...], ...]
@@ -48,6 +50,8 @@ class ResultPage(Page):
     parameters: Rows = told("Name, value with unit, meaning of each parameter found.")
     diagnosis: Diagnosis | None = told("Why there is no full result; None where there is one.")
     main_figures: tuple[Figure, ...] = told("The curve itself.")
+    extremals: tuple[Found, ...] = told("What several starts led to; empty for one start.")
+    extremal_figures: tuple[Figure, ...] = told("These curves over each other.")
     further_figures: tuple[Figure, ...] = told("Derivatives, multipliers, mesh and error history.")
     plotly: str = told("Address of the plotting script; empty where there is no figure.")
     plotly_sheet: str = told("Id of the style sheet link that the plotting script writes its rules to.")
@@ -100,7 +104,9 @@ def result_page(
         parameters=parameters_of(result),
         diagnosis=diagnosis_of(result),
         main_figures=tuple(figure for figure in drawn if figure.key.startswith(MAIN_FIGURES)),
-        further_figures=tuple(figure for figure in drawn if not figure.key.startswith(MAIN_FIGURES)),
+        extremals=found_by_starts(result),
+        extremal_figures=tuple(figure for figure in drawn if figure.key.startswith(EXTREMAL_FIGURES)),
+        further_figures=tuple(f for f in drawn if not f.key.startswith((*MAIN_FIGURES, EXTREMAL_FIGURES))),
         plotly=links.static(SCRIPT) if drawn else "",
         plotly_sheet=GLOBAL_SHEET,
         plotly_placeholders=placeholder_ids() if drawn else (),

@@ -11,7 +11,7 @@ from service.spec import read
 from solvers.curve import Curve
 from solvers.formula.nodes import Name, Number
 from solvers.problem import Condition, Parameter, Place, Problem, Unknown
-from solvers.solution import Check, Diagnosis, Finding, MeshStep, Price, Solution, Status, Verdict
+from solvers.solution import Check, Diagnosis, Extremal, Finding, MeshStep, Price, Solution, Status, Verdict
 from solvers.units import PLAIN, Unit
 from web.trajectory import read_costates, read_trajectory
 
@@ -196,3 +196,16 @@ def test_run_problem_and_hash_are_those_of_the_document():
     assert result["problem"] == DOCUMENT.source
     assert result["problem_hash"] == DOCUMENT.canonical_hash()
     assert _archived()["id"] is None
+
+
+def test_what_several_starts_led_to_is_told_in_the_users_units():
+    other = replace(SOLVED, verdict=Verdict.NOT_A_MINIMUM, value=0.5, parameters={"T": 0.3})
+    found = (Extremal(SOLVED, ("default guess",)), Extremal(other, ("x with 1 half wave up", "Sobol point 1")))
+    document = _archived(replace(SOLVED, extremals=found))
+    first, second = document["extremals"]
+    assert first["value"] == document["value"] and first["curve"] == document["curve"]
+    assert second["verdict"] == "not a minimum"
+    assert second["value"] == pytest.approx(500)
+    assert second["parameters"] == {"T": {"value": pytest.approx(300), "unit": "ms"}}
+    assert second["starts"] == ["x with 1 half wave up", "Sobol point 1"]
+    assert _archived(SOLVED)["extremals"] == []

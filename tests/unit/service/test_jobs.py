@@ -114,7 +114,7 @@ def test_what_is_no_number_is_told_as_null(value):
     problem = Problem("t", (Place(None, "0"), Place(None, "1")), (Unknown("y", 1),), value_unit=Unit("mm", 1e-3))
     event = jobs.progress_event(Progress("iteration", 1, 2, 8, 32, value, value), problem)
     assert event == {
-        "kind": "iteration", "mesh": 1, "iteration": 2, "intervals": 8, "points": 32,
+        "kind": "iteration", "start": 1, "mesh": 1, "iteration": 2, "intervals": 8, "points": 32,
         "value": None, "infeasibility": None,
     }  # fmt: skip
 
@@ -124,6 +124,6 @@ def test_a_mesh_is_told_with_its_places_in_the_users_unit():
                       value_unit=Unit("mm", 1e-3), independent_unit=Unit("ms", 1e-3))  # fmt: skip
     event = jobs.progress_event(Progress("mesh", 2, 30, 2, 8, 0.004, 0.0, 1e-5, (0.0, 0.5, 1.0)), problem)
     assert event == {
-        "kind": "mesh", "mesh": 2, "intervals": 2, "points": 8, "value": pytest.approx(4.0), "error": 1e-5,
+        "kind": "mesh", "start": 1, "mesh": 2, "intervals": 2, "points": 8, "value": pytest.approx(4.0), "error": 1e-5,
         "breaks": [0.0, 500.0, 1000.0],
     }  # fmt: skip

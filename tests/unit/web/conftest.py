@@ -224,6 +224,26 @@ def vehicle_document() -> dict[str, Any]:
     return document
 
 
+def several_document() -> dict[str, Any]:
+    """The hose with what two starts led to: itself, and the same shape upside down between its hooks."""
+    document = hose_document()
+    size, lowest = catenary(3.0, -0.4, 4.2)
+    above = arc(
+        np.linspace(0, 3, 9).tolist(),
+        {"y": lambda x: 2.0 + size * math.cosh(lowest / size) - size * np.cosh((x - lowest) / size)},
+    )
+    best = {name: document[name] for name in ("verdict", "value", "value_error", "parameters", "checks", "curve")}
+    other = best | {
+        "verdict": "not a minimum",
+        "value": 11.5,
+        "parameters": {"k": {"value": 2.5, "unit": "m"}},
+        "curve": document["curve"] | {"arcs": [above]},
+    }
+    starts = (["default guess", "y with 1 half wave down"], ["y with 1 half wave up"])
+    found = [extremal | {"starts": some} for extremal, some in zip((best, other), starts, strict=True)]
+    return document | {"id": "hose-0003", "extremals": found}
+
+
 def infeasible_document() -> dict[str, Any]:
     """A hose that is shorter than the distance of its hooks."""
     document = hose_document()
@@ -306,6 +326,12 @@ def stage() -> dict[str, Any]:
 def vehicle() -> dict[str, Any]:
     """Two arcs."""
     return vehicle_document()
+
+
+@pytest.fixture
+def several() -> dict[str, Any]:
+    """Two curves found from several starts."""
+    return several_document()
 
 
 @pytest.fixture

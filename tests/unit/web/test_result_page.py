@@ -46,7 +46,7 @@ class Outline(HTMLParser):
             assert self.open.pop() == tag
 
 
-@pytest.mark.parametrize("name", ["hose", "stage", "vehicle", "infeasible", "out_of_time"])
+@pytest.mark.parametrize("name", ["hose", "stage", "vehicle", "infeasible", "out_of_time", "several"])
 def test_every_page_is_well_formed_with_unique_ids_and_headings_in_order(name, request):
     outline = Outline(render(page(request.getfixturevalue(name))))
     assert outline.open == []
@@ -179,3 +179,20 @@ def test_every_reason_of_the_solver_has_a_heading():
 def test_every_verdict_has_a_meaning():
     empty = verdict_sentence(None, [])
     assert all(verdict_sentence(verdict.value, []) != empty for verdict in Verdict)
+
+
+def test_what_several_starts_led_to_is_listed_and_drawn(several, hose):
+    made = page(several)
+    assert [found.verdict for found in made.extremals] == ["local minimum", "not a minimum"]
+    assert [found.count for found in made.extremals] == [2, 1]
+    assert made.extremals[0].starts == "default guess; y with 1 half wave down"
+    assert made.extremals[1].parameters == (("k", "2.5\N{NO-BREAK SPACE}m"),)
+    assert all("polyline" in found.picture for found in made.extremals)
+    (overlay,) = made.extremal_figures
+    assert overlay.key == "extremals-y"
+    assert len(overlay.headings) == 3  # shares of the range, and both curves
+    assert overlay.rows[0][1:] == ("2", "2") and overlay.rows[-1][1:] == ("2.4", "2.4")  # both hooks
+    assert overlay.key not in [figure.key for figure in made.further_figures]
+    text = render(made)
+    assert text.index('id="checks"') < text.index('id="extremals"') < text.index('id="notes"')
+    assert page(hose).extremals == () and 'id="extremals"' not in render(page(hose))

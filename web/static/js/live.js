@@ -30,7 +30,7 @@ export function enhance(root) {
     drawing = 0;
     const { last } = history;
     if (last) {
-      put("mesh", `${last.mesh} (${last.intervals} intervals)`);
+      put("mesh", `${last.mesh} (${last.intervals} intervals${last.start > 1 ? `, start ${last.start}` : ""})`);
       put("iteration", String(last.iteration));
       put("value", withUnit(last.value));
       put("infeasibility", amount(last.infeasibility, 2));
