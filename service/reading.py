@@ -12,7 +12,7 @@ from service.complaints import listing, pointer
 from service.spec import Document
 from solvers.formula.mathml import Range, functional_mathml, mathml
 from solvers.formula.nodes import At, Call, Name, Node, Number, Relation, walk
-from solvers.formula.parser import parse_expression, parse_relation
+from solvers.formula.parser import Tables, parse_expression, parse_relation
 from solvers.formula.printer import numeral, text
 from solvers.formula.tokens import read_name
 from solvers.lowering import Quantity, lower, primed
@@ -53,7 +53,7 @@ def read_back(problem: Problem, document: Document) -> Json:
         "functional": _functional(problem, document),
         "relations": list(_relations(problem, document)),
         "freedom": roles.freedom(),
-        "notes": list(_notes(document)),
+        "notes": list(_notes(problem, document)),
     }
 
 
@@ -140,9 +140,9 @@ class _Roles:
 
 
 def _functional(problem: Problem, document: Document) -> Json:
-    functional, extent = document.functional, _extent(document)
-    integrand = parse_expression(functional.integrand) if functional.integrand else None
-    endpoint = parse_expression(functional.endpoint) if functional.endpoint else None
+    functional, extent, tables = document.functional, _extent(document), _tables(problem)
+    integrand = parse_expression(functional.integrand, tables) if functional.integrand else None
+    endpoint = parse_expression(functional.endpoint, tables) if functional.endpoint else None
     parts = []
     if endpoint is not None:
         parts.append(f"the endpoint term {text(endpoint)}" if integrand is not None else text(endpoint))
@@ -159,7 +159,7 @@ def _functional(problem: Problem, document: Document) -> Json:
 
 def _relations(problem: Problem, document: Document) -> Iterator[Json]:
     """Every relation of the document in its order, abbreviations and bounds included."""
-    extent = _extent(document)
+    extent, tables = _extent(document), _tables(problem)
     groups = {"endpoint": problem.endpoints, "pointwise": problem.constraints, "integral": problem.integrals}
     conditions = {c.pointer: (kind, c.unit.text) for kind, group in groups.items() for c in group}
 
@@ -168,17 +168,17 @@ def _relations(problem: Problem, document: Document) -> Iterator[Json]:
         return {"pointer": place, "kind": kind, "mathml": shown, "unit": unit}
 
     for name, formula in document.where.items():
-        tree = Relation((Name(read_name(name)), parse_expression(formula)), ("=",))
+        tree = Relation((Name(read_name(name)), parse_expression(formula, tables)), ("=",))
         yield relation(pointer("where", name), "abbreviation", tree, "")
     rates = {line.pointer: _rate_unit(problem, line.determines) for line in problem.dynamics}
     for index, formula in enumerate(document.dynamics):
         place = pointer("dynamics", index)
-        yield relation(place, "dynamics", parse_relation(formula), rates.get(place, ""), formula)
+        yield relation(place, "dynamics", parse_relation(formula, tables), rates.get(place, ""), formula)
     for member, kind in (("endpoints", "endpoint"), ("constraints", "pointwise")):
         for index, formula in enumerate(getattr(document, member)):
             place = pointer(member, index)
             kind, unit = conditions.get(place, (kind, ""))
-            yield relation(place, kind, parse_relation(formula), unit, formula)
+            yield relation(place, kind, parse_relation(formula, tables), unit, formula)
     for member, parts, kind in (
         ("unknowns", document.unknowns, "pointwise"), ("parameters", document.parameters, "parameter"),
     ):  # fmt: skip
@@ -206,16 +206,21 @@ def _rate_unit(problem: Problem, quantity: Quantity | None) -> str:
     return per(unit, problem.independent_unit.text, quantity[1]) if unit else ""
 
 
-def _notes(document: Document) -> Iterator[str]:
+def _notes(problem: Problem, document: Document) -> Iterator[str]:
     """What someone could have meant otherwise."""
     functional = document.functional
     formulas = [*document.where.values(), functional.integrand, functional.endpoint]
-    trees: list[Node] = [parse_expression(formula) for formula in formulas if formula]
+    tables = _tables(problem)
+    trees: list[Node] = [parse_expression(formula, tables) for formula in formulas if formula]
     for formula in (*document.dynamics, *document.endpoints, *document.constraints):
-        trees += parse_relation(formula).sides
+        trees += parse_relation(formula, tables).sides
     used = {node.function for tree in trees for node in walk(tree) if isinstance(node, Call)}
     if "log" in used:
         yield "log is the natural logarithm."
+
+
+def _tables(problem: Problem) -> Tables:
+    return {table.name: table for table in problem.tables}
 
 
 def _extent(document: Document) -> Range:

@@ -18,6 +18,7 @@ from solvers.formula.evaluate import evaluate
 from solvers.formula.nodes import At, Call, Name, Node, Number, Sum, children, with_children
 from solvers.formula.printer import text
 from solvers.limits import number, quantity_bounds
+from solvers.lookups import Lookups
 from solvers.lowering import Lowered, Quantity, simple_bound
 from solvers.problem import Condition, Place, Problem
 
@@ -123,17 +124,19 @@ class Environment:
         lowered: Lowered,
         symbols: dict[Quantity, ca.SX],
         numbers: dict[str, ca.SX],
+        lookups: Lookups,
         value_at: Callable[[str, int, Node, str], ca.SX] | None = None,
     ) -> None:
         self._lowered = lowered
         self._symbols = dict(symbols)
         self._numbers = dict(numbers)
         self._abbreviations = dict(lowered.problem.where)
+        self._operations = OPERATIONS | {"table": lookups.value}
         self._value_at = value_at
 
     def formula(self, tree: Node) -> ca.SX:
         """The tree as an expression of the symbols."""
-        return ca.SX(evaluate(tree, self._look_up, OPERATIONS, self._value_at))
+        return ca.SX(evaluate(tree, self._look_up, self._operations, self._value_at))
 
     def _look_up(self, name: str, order: int) -> ca.SX:
         if name in self._abbreviations and name not in self._numbers:
@@ -169,7 +172,8 @@ def _point_function(
     start, end, fraction = ca.SX.sym("a"), ca.SX.sym("b"), ca.SX.sym("s")
     length = end - start
     symbols = {q: x[i] for i, q in enumerate(lowered.states)} | {q: u[i] for i, q in enumerate(lowered.controls)}
-    here = Environment(lowered, symbols, numbers | {problem.independent: start + fraction * length})
+    lookups = Lookups()
+    here = Environment(lowered, symbols, numbers | {problem.independent: start + fraction * length}, lookups)
     rates = [length * here.formula(Name(name, order + 1)) for name, order in lowered.states]
     zero = Number(0.0, "0")
     pointwise = [Condition(Name("?"), zero, zero, e.label, e.pointer) for e in lowered.equalities]
@@ -188,7 +192,7 @@ def _point_function(
     v, d = ca.vertcat(x, u, start, end, parameters), ca.vertcat(fraction, constants)
     outputs = ca.vertcat(*rates, *bodies, *weighed, cost)
     function = PointFunction(len(lowered.states), len(lowered.controls), len(bodies), len(weighed),
-                             *_with_derivatives("point", v, d, outputs))  # fmt: skip
+                             *_with_derivatives("point", v, d, outputs, lookups))  # fmt: skip
     return function, tuple(pointwise), tuple(bounds)
 
 
@@ -200,11 +204,13 @@ def _end_function(
     problem = lowered.problem
     values = [ca.SX.sym(f"x{i}", len(lowered.states)) for i in range(len(problem.places))]
     places = ca.SX.sym("t", len(problem.places))
+    lookups = Lookups()
     environments = [
         Environment(
             lowered,
             {q: values[i][k] for k, q in enumerate(lowered.states)},
             numbers | {problem.independent: places[i]},
+            lookups,
         )
         for i in range(len(problem.places))
     ]
@@ -228,10 +234,10 @@ def _end_function(
     term = _lift_integrals(problem.endpoint, integrands) if problem.endpoint is not None else Number(0.0, "0")
     totals = ca.SX.sym("q", len(integrands))
     numbers = numbers | {_total(k): totals[k] for k in range(len(integrands))}
-    outside = Environment(lowered, {}, numbers, value_at)
+    outside = Environment(lowered, {}, numbers, lookups, value_at)
     outputs = ca.vertcat(*(outside.formula(tree) for tree in (*trees, term)))
     y = ca.vertcat(*values, places, parameters, totals)
-    function = EndFunction(*_with_derivatives("end", y, constants, outputs))
+    function = EndFunction(*_with_derivatives("end", y, constants, outputs, lookups))
     return tuple(conditions), tuple(fixed), tuple(rims), function
 
 
@@ -276,7 +282,7 @@ def _key(tree: Node) -> float | str:
 
 
 def _with_derivatives(
-    name: str, v: ca.SX, d: ca.SX, outputs: ca.SX
+    name: str, v: ca.SX, d: ca.SX, outputs: ca.SX, lookups: Lookups
 ) -> tuple[ca.Function, ca.Function, list[int], list[int], ca.Function, list[int], list[int]]:
     """The function, the nonzeros of its Jacobian and of its weighted Hessian's upper triangle, with their places."""
     weights = ca.SX.sym("w", outputs.size1())
@@ -284,12 +290,13 @@ def _with_derivatives(
     hessian = ca.triu(ca.hessian(ca.dot(weights, outputs), v)[0])
     jacobian_columns, jacobian_rows = _places(jacobian.sparsity())
     hessian_columns, hessian_rows = _places(hessian.sparsity())
+    value, slopes, curvatures = lookups.settled([ca.densify(outputs), _column(jacobian), _column(hessian)])
     return (
-        ca.Function(name, [v, d], [ca.densify(outputs)]),
-        ca.Function(name + "_jacobian", [v, d], [_column(jacobian)]),
+        ca.Function(name, [v, d], [value]),
+        ca.Function(name + "_jacobian", [v, d], [slopes]),
         jacobian_rows,
         jacobian_columns,
-        ca.Function(name + "_hessian", [v, d, weights], [_column(hessian)]),
+        ca.Function(name + "_hessian", [v, d, weights], [curvatures]),
         hessian_rows,
         hessian_columns,
     )

@@ -94,8 +94,6 @@ def necessary_conditions(problem: Problem, deadline: float | None = None) -> Nec
         notes.append(f"The necessary conditions are left out: {error}.")
     except TimeoutError:
         notes.append("Some necessary conditions are left out: deriving them takes too long.")
-    except ValueError as error:  # a table in a formula
-        notes.append(f"Some necessary conditions are left out: {error}.")
     return NecessaryConditions(tuple(found), tuple(notes))
 
 

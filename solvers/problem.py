@@ -12,6 +12,7 @@ from dataclasses import dataclass, field
 from enum import Enum
 
 from solvers.formula.nodes import Node
+from solvers.tables import Table
 from solvers.units import PLAIN, Unit
 
 
@@ -184,6 +185,7 @@ class Problem:
     endpoint: Node | None = None
     constants: tuple[Constant, ...] = ()
     parameters: tuple[Parameter, ...] = ()
+    tables: tuple[Table, ...] = ()  # the trees hold those that they use
     where: tuple[tuple[str, Node], ...] = ()  # in an order in which each uses only earlier ones
     dynamics: tuple[Equation, ...] = ()
     endpoints: tuple[Condition, ...] = ()  # bodies use `At`, parameters, constants

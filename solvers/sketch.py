@@ -27,6 +27,7 @@ ARRAYS: dict[str, Callable[..., Any]] = {
     "tanh": np.tanh, "abs": np.abs, "sign": np.sign, "hypot": np.hypot, "power": np.power,
     "min": lambda *values: np.minimum.reduce(np.broadcast_arrays(*values)),
     "max": lambda *values: np.maximum.reduce(np.broadcast_arrays(*values)),
+    "table": lambda table, orders, *arguments: table.value(*arguments, orders=orders),
 }  # fmt: skip
 """The operations of formulas on arrays."""
 

@@ -7,12 +7,14 @@ from dataclasses import dataclass, replace
 from itertools import chain
 
 from service.assemble.counting import check
+from service.assemble.covering import covered
 from service.assemble.declared import Declared, read_declared
 from service.assemble.dimensions import Sort, Units
-from service.assemble.domain import undefined, with_children
+from service.assemble.domain import undefined
 from service.assemble.formulas import Formulas, Statement, parse_all
 from service.assemble.guesses import Guess, check_guess_names, read_guesses, with_guess
 from service.assemble.meaning import Meaning, read_meaning
+from service.assemble.measured import read_tables
 from service.assemble.names import Kind, declare
 from service.assemble.orders import explicit, find_orders, reach_of
 from service.assemble.placement import misplaced
@@ -22,8 +24,9 @@ from service.assemble.resolving import wrong_names
 from service.complaints import Complaint, Stage, refuse
 from service.spec import Document
 from service.units import Measure
-from solvers.formula.nodes import At, Call, Name, Node, Number, children, walk
+from solvers.formula.nodes import At, Call, Name, Node, Number, children, walk, with_children
 from solvers.problem import Condition, Equation, Options, Problem, Seek, Unknown
+from solvers.tables import Table
 from solvers.units import PLAIN, Unit
 
 LARGEST_SIZE = 10_000
@@ -41,17 +44,18 @@ def assemble(document: Document) -> Problem:
     _check_length(document)
     names = declare(document)
     check_guess_names(document, names)
-    formulas = parse_all(document, names)
+    measured = read_tables(document, names)
+    formulas = parse_all(document, names, measured.tables)
     _check_size(formulas)
     refuse(Stage.NAMES, wrong_names(formulas, names))
     meaning = read_meaning(formulas, names)
     refuse(Stage.FORMULAS, misplaced(formulas, meaning))
     _check_written_out(formulas, meaning)
-    declared = read_declared(document, names)
+    declared = read_declared(document, names, measured.complaints)
     constants = {name: constant.value for name, constant in declared.constants.items()}
     refuse(Stage.FORMULAS, [found for formula in formulas.all() for found in undefined(formula, constants)])
 
-    units = Units(names.independent, declared.sorts, constants)
+    units = Units(names.independent, declared.sorts, constants, measured.sorts)
     for name in meaning.order:
         sort = units.sort(formulas.where[name].tree, formulas.where[name])
         units.sorts[name] = replace(sort, zero=False)
@@ -65,7 +69,8 @@ def assemble(document: Document) -> Problem:
     stated = (*formulas.endpoints, *formulas.constraints)
     refuse(Stage.CONDITIONS, [found for statement in stated for found in says_nothing(statement, meaning)])
     places = find_places(formulas, units, dict(declared.parameters))
-    problem = _Builder(document, formulas, meaning, declared, guesses, units, places, sides).problem(value_unit)
+    builder = _Builder(document, formulas, meaning, declared, guesses, units, places, sides)
+    problem = covered(builder.problem(value_unit, tuple(measured.tables.values())), formulas, meaning, builder.settle)
     check(problem)
     return problem
 
@@ -156,7 +161,7 @@ class _Builder:
     places: Places
     sides: dict[str, Sides]
 
-    def problem(self, value_unit: Unit) -> Problem:
+    def problem(self, value_unit: Unit, tables: tuple[Table, ...]) -> Problem:
         traits = self.meaning.traits
         where = [(name, self.formulas.where[name].tree) for name in self.meaning.order if not traits[name].placed]
         orders = find_orders(self.formulas, self.meaning.names)
@@ -172,6 +177,7 @@ class _Builder:
             endpoint=self.settle(formulas.endpoint.tree) if formulas.endpoint else None,
             constants=tuple(self.declared.constants.values()),
             parameters=tuple(self.declared.parameters.values()),
+            tables=tables,
             where=tuple(where),
             dynamics=tuple(explicit(self.equations(), orders, reach_of(where))),
             endpoints=endpoints,
@@ -215,4 +221,4 @@ class _Builder:
                 return self.settle(self.formulas.where[name].tree)
             case Number() | Name():
                 return node
-        return with_children(node, [self.settle(part) for part in children(node)])
+        return with_children(node, tuple(self.settle(part) for part in children(node)))

@@ -33,7 +33,10 @@ def _pointless(problem: Problem) -> Iterator[Complaint]:
     """Lines of dynamics without an unknown, limits without anything that could meet them."""
     names = {unknown.name for unknown in problem.unknowns}
     reach = reach_of(problem.where)
-    open_names = names | {parameter.name for parameter in problem.parameters}
+    parameters = {parameter.name for parameter in problem.parameters}
+    open_names = names | parameters
+    if any(isinstance(place.tree, Name) and place.tree.name in parameters for place in problem.places):
+        open_names.add(problem.independent)  # how far it runs is to be found
     for condition in (*problem.constraints, *problem.integrals):
         if not open_names & {name for name, _ in derivatives([condition.body], reach)}:
             message = f"{quoted(condition.label)} says nothing about an unknown or a parameter."

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 
 from service.assemble.dimensions import UNCHECKED, Sort
@@ -27,9 +27,12 @@ class Declared:
     bounds: Mapping[str, tuple[float, float]]  # of unknowns
 
 
-def read_declared(document: Document, names: Names) -> Declared:
-    """Units, constants and bounds.  Raises `Refused`: stage units for units and values, conditions for bounds."""
-    complaints: list[Complaint] = []
+def read_declared(document: Document, names: Names, others: Iterable[Complaint] = ()) -> Declared:
+    """Units, constants and bounds.  Raises `Refused`: stage units for units and values, conditions for bounds.
+
+    `others` are complaints about units that were found before.
+    """
+    complaints: list[Complaint] = list(others)
     sorts: dict[str, Sort] = {}
     units: dict[str, Unit] = {}
 

@@ -6,13 +6,14 @@ import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from fractions import Fraction
+from types import MappingProxyType
 
 from service.assemble.domain import Values, literal, value_of
 from service.assemble.formulas import Formula
 from service.assemble.quoting import quoted
 from service.complaints import Complaint
 from service.units import ONE, PURE, Measure
-from solvers.formula.nodes import At, Call, Name, Negative, Node, Number, Power, Product, Sum, walk
+from solvers.formula.nodes import At, Call, Lookup, Name, Negative, Node, Number, Power, Product, Sum, walk
 from solvers.formula.printer import text
 
 PURE_FUNCTIONS = frozenset({"exp", "log", "sin", "cos", "tan", "asin", "acos", "atan", "sinh", "cosh", "tanh"})
@@ -44,14 +45,29 @@ class Sort:
 UNCHECKED = Sort(ONE, checked=False)
 
 
+@dataclass(frozen=True, slots=True)
+class TableSorts:
+    """The sort of a table's values and of its arguments."""
+
+    value: Sort
+    arguments: tuple[Sort, ...]
+
+
 class Units:
     """Finds the unit of formulas; complaints gather in `complaints`.
 
     `sorts` has every name (order 0); abbreviations are added by the caller in their order.
     """
 
-    def __init__(self, independent: str, sorts: Mapping[str, Sort], constants: Values) -> None:
+    def __init__(
+        self,
+        independent: str,
+        sorts: Mapping[str, Sort],
+        constants: Values,
+        tables: Mapping[str, TableSorts] = MappingProxyType({}),
+    ) -> None:
         self.independent = independent
+        self.tables = tables
         self.sorts = dict(sorts)
         self.constants = constants
         self.complaints: list[Complaint] = []
@@ -93,6 +109,8 @@ class Units:
                 return self.power(node, formula)
             case Call():
                 return self.call(node, formula)
+            case Lookup():
+                return self.lookup(node, formula)
 
     def product(self, node: Product, formula: Formula) -> Sort:
         total = Sort(ONE, bare=True)
@@ -141,6 +159,40 @@ class Units:
                 by = self.sorts[self.independent]
                 return Sort(sort.measure.times(by.measure), sort.checked and by.checked, mixed=sort.mixed)
         return sort  # abs
+
+    def lookup(self, node: Lookup, formula: Formula) -> Sort:
+        """A table has its own unit; each argument has to be of the kind that was measured."""
+        known = self.tables[node.table.name]
+        total = known.value
+        for argument, name, wanted, order in zip(
+            node.arguments, node.table.arguments, known.arguments, node.orders, strict=True
+        ):
+            self.fits(argument, wanted, f"the argument {name} of {node.table.name}", formula)
+            if order:
+                measure = total.measure.times(wanted.measure, Fraction(-order))
+                total = Sort(measure, total.checked and wanted.checked)
+        return total
+
+    def fits(self, node: Node, wanted: Sort, what: str, formula: Formula) -> None:
+        """Complain where an expression is not of the kind that is wanted."""
+        sort = self.sort(node, formula)
+        if sort.zero or isinstance(node, Number) or (isinstance(node, Negative) and isinstance(node.operand, Number)):
+            return  # a bare number has been read in the unit that is wanted
+        if sort.measure.dimension == wanted.measure.dimension:
+            if sort.bare and wanted.measure.factor != 1:
+                message = f"{quoted(node)} is a pure number, {what} is {wanted.told}."
+                hint = f'Give it a unit: a constant such as "c": "30 {wanted.measure.text}".'
+                self.complaints.append(formula.complaint(node.span, "bare-number", message, hint))
+            return
+        message = f"{quoted(node)} is {sort.told}, {what} is {wanted.told}."
+        if sort.checked and wanted.checked:
+            hint = f"Both have to be of one kind, for instance {wanted.measure.text}."
+            if sort.bare and literal(node):
+                hint = f'Give it a unit: a constant such as "c": "{text(node)[:20]} {wanted.measure.text}".'
+            self.complaints.append(formula.complaint(node.span, "unit-clash", message, hint))
+        elif not math.isclose(sort.measure.factor, wanted.measure.factor, rel_tol=1e-12):
+            hint = "Give all of them a unit, or none."
+            self.complaints.append(formula.complaint(node.span, "mixed-units", message, hint))
 
     def alike(self, nodes: Sequence[Node], formula: Formula) -> Sort:
         """The sort of parts that have to be of one kind: terms of a sum, arguments of max."""

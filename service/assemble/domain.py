@@ -4,13 +4,13 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping, Sequence
-from dataclasses import replace
 
 from service.assemble.formulas import Formula
 from service.assemble.quoting import quoted
 from service.complaints import Complaint
 from solvers.formula.evaluate import REAL, evaluate
-from solvers.formula.nodes import At, Call, Name, Negative, Node, Number, Power, Product, Relation, Sum, children, walk
+from solvers.formula.nodes import At, Call, Name, Node, Number, Power, Product, Relation, children, walk, with_children
+from solvers.tables import OutsideRangeError
 
 Values = Mapping[str, float]
 """Constants by name, in SI."""
@@ -22,22 +22,6 @@ def value_of(node: Node, constants: Values) -> float:
     if not math.isfinite(value):
         raise OverflowError("beyond the range of numbers")
     return float(value)
-
-
-def with_children(node: Node, parts: Sequence[Node]) -> Node:
-    """The node with other parts, in reading order."""
-    match node:
-        case Negative():
-            return replace(node, operand=parts[0])
-        case Sum():
-            return replace(node, terms=tuple(parts))
-        case Product():
-            return replace(node, factors=tuple(parts))
-        case Power():
-            return replace(node, base=parts[0], exponent=parts[1])
-        case Call():
-            return replace(node, arguments=tuple(parts))
-    return node
 
 
 def literal(node: Node) -> bool:
@@ -76,11 +60,13 @@ class _Walk:
             return None
         numbers = [Number(part, "") for part in given]
         try:
-            return value_of(with_children(node, numbers), self.constants)
+            return value_of(with_children(node, tuple(numbers)), self.constants)
         except LookupError:
             return None
         except (ArithmeticError, ValueError) as error:
             reason = "too large" if isinstance(error, OverflowError) else "no real number is its value"
+            if isinstance(error, OutsideRangeError):
+                reason = str(error)
             self.complain(node, f"{quoted(node)} is not defined: {reason}.", "Change the numbers or constants in it.")
             return None
 

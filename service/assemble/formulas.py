@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
+from functools import partial
 from typing import TypeVar
 
 from service.assemble.names import Names
@@ -11,7 +12,7 @@ from service.complaints import Complaint, Stage, pointer, refuse, sentence
 from service.spec import Document
 from solvers.formula.errors import FormulaError
 from solvers.formula.nodes import Node, Number, Relation, Span
-from solvers.formula.parser import parse_expression, parse_relation
+from solvers.formula.parser import Tables, parse_expression, parse_relation
 
 Tree = TypeVar("Tree", Node, Relation, Node | Relation)
 
@@ -74,7 +75,7 @@ class Formulas:
         yield from self.constraints
 
 
-def parse_all(document: Document, names: Names) -> Formulas:
+def parse_all(document: Document, names: Names, tables: Tables) -> Formulas:
     """Read every formula.  Raises `Refused` (stage formulas) with the first error of each."""
     complaints: list[Complaint] = []
 
@@ -82,12 +83,14 @@ def parse_all(document: Document, names: Names) -> Formulas:
         if isinstance(text, float):
             shown = repr(text).removesuffix(".0")
             return Expression(Number(text, shown), shown, pointer(*place), written=False)
-        return Expression(_read(parse_expression, text, Number(0.0, "0"), place, complaints), text, pointer(*place))
+        tree = _read(partial(parse_expression, tables=tables), text, Number(0.0, "0"), place, complaints)
+        return Expression(tree, text, pointer(*place))
 
     def statements(member: str, texts: tuple[str, ...]) -> tuple[Statement, ...]:
+        parse = partial(parse_relation, tables=tables)
         nothing = Relation((Number(0.0, "0"), Number(0.0, "0")), ("=",))
         return tuple(
-            Statement(_read(parse_relation, text, nothing, (member, index), complaints), text, pointer(member, index))
+            Statement(_read(parse, text, nothing, (member, index), complaints), text, pointer(member, index))
             for index, text in enumerate(texts)
         )
 

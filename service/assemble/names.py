@@ -22,6 +22,7 @@ class Kind(Enum):
     PARAMETER = "a parameter"
     UNKNOWN = "an unknown"
     ABBREVIATION = "an abbreviation"
+    TABLE = "a table"
 
 
 RESERVED = frozenset({*FUNCTIONS, "integral", "pi"})
@@ -50,7 +51,9 @@ class Names:
         if name in HABITS:
             return f"here it is written {HABITS[name]}"
         near = closest(name, (*self.kinds, *sorted(RESERVED)))
-        return f"did you mean “{near}”?" if near else "declare it under constants, parameters, unknowns or where"
+        return (
+            f"did you mean “{near}”?" if near else "declare it under constants, parameters, unknowns, tables or where"
+        )
 
 
 def declare(document: Document) -> Names:
@@ -59,7 +62,7 @@ def declare(document: Document) -> Names:
     written: dict[str, str] = {}
     places: dict[str, str] = {}
     complaints: list[Complaint] = []
-    for name, kind, place in _declarations(document):
+    for name, kind, place in declarations(document):
         try:
             spelling = read_name(name)
         except FormulaError as error:
@@ -83,12 +86,14 @@ def declare(document: Document) -> Names:
     return Names(independent, MappingProxyType(kinds), MappingProxyType(written))
 
 
-def _declarations(document: Document) -> Iterable[tuple[str, Kind, str]]:
+def declarations(document: Document) -> Iterable[tuple[str, Kind, str]]:
+    """Every name that a document declares, as it is written, with its kind and its JSON pointer."""
     yield document.independent.name, Kind.INDEPENDENT, "/independent/name"
     for member, kind, table in (
         ("constants", Kind.CONSTANT, document.constants),
         ("parameters", Kind.PARAMETER, document.parameters),
         ("unknowns", Kind.UNKNOWN, document.unknowns),
+        ("tables", Kind.TABLE, document.tables),
         ("where", Kind.ABBREVIATION, document.where),
     ):
         for name in table:

@@ -52,6 +52,9 @@ class _Checker:
             return
         if kind is None:
             yield self.unknown(node.span, node.name)
+        elif kind is Kind.TABLE:
+            message = f"“{node.name}” is a table: it has a value for each argument only"
+            yield self.complaint(node.span, "table-name", message, f"write {node.name}(…)")
         elif node.order and kind is not Kind.UNKNOWN:
             yield self.no_derivative(node.span, node.name, kind)
         elif node.order > HIGHEST_ORDER:

@@ -21,6 +21,12 @@ MOST_RELATIONS = 200
 MOST_POINTS = 5_000
 """Points of one guess."""
 
+MOST_ROWS = 5_000
+"""Rows of points of one table."""
+
+MOST_COLUMNS = 501
+"""Numbers of one such row."""
+
 Number = Annotated[float, Field(allow_inf_nan=False)]
 Formula = Annotated[str, Field(min_length=1, max_length=LONGEST_FORMULA)]
 Relations = Annotated[tuple[Formula, ...], Field(max_length=MOST_RELATIONS)]
@@ -63,6 +69,28 @@ class UnknownPart(Part):
 
     unit: UnitText = ""
     within: Within = (None, None)
+    about: About = ""
+
+
+class TablePart(Part):
+    """A measured function of one or two arguments, used as `n(r)` or `n(x, y)` in formulas."""
+
+    of: dict[Annotated[str, Field(max_length=40)], UnitText] = Field(
+        min_length=1, max_length=2, description="Name of each argument -> its unit", examples=[{"r": "mm"}]
+    )
+    unit: UnitText = ""
+    points: tuple[Annotated[tuple[Number | None, ...], Field(min_length=1, max_length=MOST_COLUMNS)], ...] = Field(
+        min_length=2, max_length=MOST_ROWS,
+        description="One argument: rows of argument and value. Two: a grid, whose first row is null and the places of "
+        "the second argument, and whose other rows are a place of the first and the values there",
+        examples=[[[0, 1.62], [1, 1.61], [2, 1.58]], [[None, 0, 1], [20, 4.1, 4.4], [40, 4.6, 5.0]]],
+    )  # fmt: skip
+    between: Literal["smooth", "monotone", "linear"] = Field(
+        "smooth", description="smooth: two continuous derivatives; monotone: one, keeps the points' shape; linear"
+    )
+    outside: Literal["refuse", "hold", "extend"] = Field(
+        "refuse", description="Beyond its range: arguments stay inside; the last value holds; its tangent goes on"
+    )
     about: About = ""
 
 
@@ -111,6 +139,8 @@ class Document(Part):
         examples=[{"g": "9.80665 m/s^2", "l": "0.80 m +/- 0.01 m", "n": 3}])] = {}  # fmt: skip
     parameters: Annotated[dict[str, ParameterPart], Field(max_length=MOST_NAMES)] = {}
     unknowns: Annotated[dict[str, UnknownPart], Field(min_length=1, max_length=MOST_NAMES)]
+    tables: Annotated[dict[str, TablePart], Field(
+        max_length=MOST_NAMES, description="Name -> measured function given by points")] = {}  # fmt: skip
     where: Annotated[dict[str, Formula], Field(
         max_length=MOST_NAMES, description="Name -> formula: abbreviations, usable everywhere")] = {}  # fmt: skip
     dynamics: Relations = Field((), description="Differential equations", examples=[["x'' = a", "m*v' + k*v = F"]])

@@ -9,7 +9,15 @@ from pydantic import BaseModel, ValidationError
 from pydantic_core import ErrorDetails
 
 from service.complaints import MOST, Complaint, closest, listing, pointer
-from service.spec.model import Document, FunctionalPart, IndependentPart, ParameterPart, SolvePart, UnknownPart
+from service.spec.model import (
+    Document,
+    FunctionalPart,
+    IndependentPart,
+    ParameterPart,
+    SolvePart,
+    TablePart,
+    UnknownPart,
+)
 
 _KINDS = {
     "string_type": "text", "float_type": "a number", "float_parsing": "a number", "int_type": "a whole number",
@@ -82,7 +90,7 @@ def _complaint(place: str, details: list[ErrorDetails]) -> Complaint:
             )
             return Complaint(place, None, "no-functional", "Nothing is sought: there is no functional.", hint)
         case "too_long" | "too_short":
-            return _count(place, context)
+            return _count(place, context, detail["input"])
         case "string_too_long" | "string_too_short":
             limit = context.get("max_length", context.get("min_length"))
             long = detail["type"] == "string_too_long"
@@ -95,13 +103,13 @@ def _complaint(place: str, details: list[ErrorDetails]) -> Complaint:
             return Complaint(place, None, "out-of-range", message, f"Write {listing(limits) or 'a finite number'}.")
 
 
-def _count(place: str, context: dict[str, Any]) -> Complaint:
-    """A list or a table of names with too many or too few entries."""
+def _count(place: str, context: dict[str, Any], given: Any) -> Complaint:
+    """A list or an object with too many or too few entries."""
     most, least = context.get("max_length"), context.get("min_length")
     if least == 2 and most != 2:
         hint = "Give two points at least, as in [[0, 1], [3, 2]]."
         return Complaint(place, None, "wrong-length", "One point makes no curve.", hint)
-    if most == 2:
+    if most == 2 and not isinstance(given, dict):
         hint = "Write two items, as in [0, 2]."
         return Complaint(place, None, "wrong-length", "This list has the wrong number of items.", hint)
     if most is not None:
@@ -114,7 +122,7 @@ def _members(location: tuple[str | int, ...]) -> tuple[str, ...]:
     """The members that the part at `location` may have, as they are written."""
     parts: dict[str, type[BaseModel]] = {
         "independent": IndependentPart, "parameters": ParameterPart, "unknowns": UnknownPart,
-        "functional": FunctionalPart, "solve": SolvePart,
+        "functional": FunctionalPart, "solve": SolvePart, "tables": TablePart,
     }  # fmt: skip
     part = parts[str(location[0])] if location else Document
     return tuple(field.alias or name for name, field in part.model_fields.items())

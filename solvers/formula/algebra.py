@@ -17,6 +17,7 @@ from solvers.formula.nodes import (
     NOWHERE,
     At,
     Call,
+    Lookup,
     Name,
     Negative,
     Node,
@@ -55,6 +56,8 @@ def bare(tree: Node) -> Node:
             return At(name, order, parts[0], side)
         case Call(function, _):
             return Call(function, parts)
+        case Lookup(table, orders):
+            return Lookup(table, orders, parts)
         case Negative():
             return Negative(parts[0])
         case Sum(_, minus):
@@ -159,7 +162,7 @@ def rational(tree: Node) -> Exact | None:
     """The exact value of a formula of numbers, or None."""
     if isinstance(tree, Number) and (said := _folded(tree, 1)) is not None:
         return said
-    if any(isinstance(node, Name | At | Call) for node in walk(tree)):  # most often the first leaf is one
+    if any(isinstance(node, Name | At | Call | Lookup) for node in walk(tree)):  # most often the first leaf is one
         return None
     if isinstance(tree, Sum):
         tree = add([tree])

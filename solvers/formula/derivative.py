@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Collection
+from dataclasses import replace
 from fractions import Fraction
 from functools import cache
 
@@ -10,6 +11,7 @@ from solvers.formula.algebra import ONE, ZERO, add, bare, factors_of, multiply, 
 from solvers.formula.nodes import (
     At,
     Call,
+    Lookup,
     Name,
     Negative,
     Node,
@@ -39,8 +41,7 @@ def derivative(tree: Node, target: Node, check: Callable[[], None] | None = None
     """The partial derivative of `tree` with respect to `target`: a name, a value at a place or an `integral(…)`.
 
     Names with different primes are independent of each other; values at places and integrals depend on no name.
-    `check` is called at every step and may raise to end a derivation that takes too long.  Raises ValueError for a
-    table, whose derivative is no formula.
+    `check` is called at every step and may raise to end a derivation that takes too long.
     """
     return _derivative(bare(tree), bare(target), check or (lambda: None))
 
@@ -82,6 +83,11 @@ def _derivative(tree: Node, target: Node, check: Callable[[], None]) -> Node:
                 return ZERO
             partials = _partials(function, arguments)
             return add(multiply([p, s]) for p, s in zip(partials, slopes, strict=True) if s != ZERO)
+        case Lookup(orders=orders, arguments=arguments):
+            slopes = [_derivative(argument, target, check) for argument in arguments]
+            raised = [tuple(order + (k == by) for k, order in enumerate(orders)) for by in range(len(orders))]
+            partials = [replace(tree, orders=higher) for higher in raised]
+            return add(multiply([p, s]) for p, s in zip(partials, slopes, strict=True) if s != ZERO)
     raise TypeError(f"no derivative of a {type(tree).__name__}")
 
 
@@ -115,7 +121,5 @@ def _rules(function: str) -> tuple[Node, ...]:
 
 
 def _partials(function: str, arguments: tuple[Node, ...]) -> list[Node]:
-    if function not in _PARTIALS:
-        raise ValueError(f"the derivative of the table '{function}' is no formula")
     given: dict[Node, Node] = dict(zip((Name("u"), Name("v")), arguments, strict=False))
     return [substitute(rule, given.get) for rule in _rules(function)]

@@ -6,7 +6,7 @@ import math
 from collections.abc import Callable, Mapping, Sequence
 from typing import Any
 
-from solvers.formula.nodes import At, Call, Name, Negative, Node, Number, Power, Product, Sum, children
+from solvers.formula.nodes import At, Call, Lookup, Name, Negative, Node, Number, Power, Product, Sum, children
 
 LookUp = Callable[[str, int], Any]
 """(name, order) -> value."""
@@ -20,9 +20,10 @@ def evaluate(
 ) -> Any:
     """The value of `node`.
 
-    `operations` gives every function by its name, and "power" of base and exponent; `+ - * /` are those of the
-    values.  `look_up` is asked for every name but `pi`, `value_at` for every value at a place.  Errors of the
-    operations (ValueError, ZeroDivisionError of floats) pass through.
+    `operations` gives every function by its name, "power" of base and exponent, and "table" of a table, the orders of
+    its derivative and the arguments; `+ - * /` are those of the values.  `look_up` is asked for every name but `pi`,
+    `value_at` for every value at a place.  Errors of the operations (ValueError, ZeroDivisionError of floats) pass
+    through.
     """
     values: list[Any] = []
     waiting = [(node, False)]
@@ -68,6 +69,8 @@ def _combined(node: Node, parts: Sequence[Any], operations: Mapping[str, Callabl
             return operations["power"](parts[0], parts[1])
         case Call(function=function):
             return operations[function](*parts)
+        case Lookup(table=table, orders=orders):
+            return operations["table"](table, orders, *parts)
     raise TypeError(f"no value for a {type(node).__name__}")
 
 
@@ -79,5 +82,6 @@ REAL: dict[str, Callable[..., Any]] = {
     **{name: getattr(math, name) for name in ("sqrt", "exp", "log", "sin", "cos", "tan", "asin", "acos", "atan")},
     **{name: getattr(math, name) for name in ("atan2", "sinh", "cosh", "tanh", "hypot")},
     "abs": abs, "min": min, "max": max, "sign": _sign, "power": math.pow,
+    "table": lambda table, orders, *arguments: table.strict_value(*arguments, orders=orders),
 }  # fmt: skip
 """The operations on plain floats; an argument outside of a function's domain raises ValueError."""

@@ -7,8 +7,22 @@ from dataclasses import dataclass
 from html import escape
 from itertools import pairwise
 
-from solvers.formula.nodes import FUNCTIONS, At, Call, Name, Negative, Node, Number, Power, Product, Relation, Sum
+from solvers.formula.nodes import (
+    FUNCTIONS,
+    At,
+    Call,
+    Lookup,
+    Name,
+    Negative,
+    Node,
+    Number,
+    Power,
+    Product,
+    Relation,
+    Sum,
+)
 from solvers.formula.printer import ATOM, POWER, PRODUCT, SIGNED, numeral, text, tightness, written
+from solvers.tables import Table
 
 GREEK = {
     "alpha": "α", "beta": "β", "gamma": "γ", "delta": "δ", "epsilon": "ε", "zeta": "ζ", "eta": "η", "theta": "θ",
@@ -103,6 +117,10 @@ class _Printer:
                 return _name(name, order) + _bracketed(where)
             case Call(function=function, arguments=arguments):
                 return self.call(function, arguments)
+            case Lookup(orders=orders, arguments=arguments):
+                name = _name(tree.table.name, orders[0]) if len(orders) == 1 else _name(tree.spelling, 0)
+                inner = [self.node(argument) for argument in arguments]
+                return name + _bracketed('<mo separator="true">,</mo>'.join(inner))
             case Negative(operand=operand):
                 return _MINUS + self.part(operand, PRODUCT)
             case Sum(terms=terms, minus=minus):
@@ -279,7 +297,7 @@ def _is_word(tree: Node) -> bool:
     match tree:
         case Call(function=function):
             return function not in ("sqrt", "abs")
-        case Name(name=name) | At(name=name):
+        case Name(name=name) | At(name=name) | Lookup(table=Table(name=name)):
             letters, _ = _split(name)
             return len(letters) > 1 and letters not in GREEK
         case Power(base=base):

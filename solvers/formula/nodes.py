@@ -5,6 +5,8 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
 
+from solvers.tables import Table
+
 FUNCTIONS: dict[str, int] = {
     "sqrt": 1, "exp": 1, "log": 1, "sin": 1, "cos": 1, "tan": 1, "asin": 1, "acos": 1, "atan": 1, "atan2": 2,
     "sinh": 1, "cosh": 1, "tanh": 1, "abs": 1, "min": 2, "max": 2, "hypot": 2, "sign": 1,
@@ -54,11 +56,29 @@ class At:
 
 @dataclass(frozen=True, slots=True)
 class Call:
-    """A built-in function, `integral`, or (after names are resolved) a table."""
+    """A built-in function, or `integral`."""
 
     function: str
     arguments: tuple[Node, ...]
     span: Span = NOWHERE
+
+
+@dataclass(frozen=True, slots=True)
+class Lookup:
+    """The value of a table, or its derivative of these orders by its arguments."""
+
+    table: Table
+    orders: tuple[int, ...]
+    arguments: tuple[Node, ...]
+    span: Span = NOWHERE
+
+    @property
+    def spelling(self) -> str:
+        """What stands before the parentheses: `n`, `n''` with one argument, `n_r_z` with two."""
+        if len(self.orders) == 1:
+            return self.table.name + "'" * self.orders[0]
+        slopes = (name for name, order in zip(self.table.arguments, self.orders, strict=True) for _ in range(order))
+        return "_".join((self.table.name, *slopes))
 
 
 @dataclass(frozen=True, slots=True)
@@ -105,7 +125,7 @@ class Relation:
     span: Span = NOWHERE
 
 
-Node = Number | Name | At | Call | Negative | Sum | Product | Power
+Node = Number | Name | At | Call | Lookup | Negative | Sum | Product | Power
 """An expression: everything but a relation."""
 
 
@@ -114,7 +134,7 @@ def children(node: Node) -> tuple[Node, ...]:
     match node:
         case At(place=place):
             return (place,)
-        case Call(arguments=arguments):
+        case Call(arguments=arguments) | Lookup(arguments=arguments):
             return arguments
         case Negative(operand=operand):
             return (operand,)
@@ -147,7 +167,7 @@ def with_children(node: Node, parts: tuple[Node, ...]) -> Node:
     match node:
         case At():
             return replace(node, place=parts[0])
-        case Call():
+        case Call() | Lookup():
             return replace(node, arguments=parts)
         case Negative():
             return replace(node, operand=parts[0])

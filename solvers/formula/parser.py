@@ -2,11 +2,16 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
+from dataclasses import replace
+from types import MappingProxyType
+
 from solvers.formula.errors import FormulaError
 from solvers.formula.nodes import (
     FUNCTIONS,
     At,
     Call,
+    Lookup,
     Name,
     Negative,
     Node,
@@ -19,6 +24,8 @@ from solvers.formula.nodes import (
     walk,
 )  # fmt: skip
 from solvers.formula.tokens import Token, tokens
+from solvers.tables import Table
+from solvers.units import PLAIN, Unit
 
 DEPTH_LIMIT = 100
 """Levels of parentheses, signs and powers within each other; keeps every recursion over a tree shallow."""
@@ -30,10 +37,15 @@ SIGNS = ("=", "<=", ">=")
 ENDLESS = ("min", "max")
 """Functions that take two or more arguments."""
 
+Tables = Mapping[str, Table]
+"""The tables that a formula may use, by name."""
 
-def parse_expression(text: str) -> Node:
+NO_TABLES: Tables = MappingProxyType({})
+
+
+def parse_expression(text: str, tables: Tables = NO_TABLES) -> Node:
     """The tree of a formula without a sign of relation.  Raises FormulaError."""
-    parser = _Parser(text)
+    parser = _Parser(text, tables)
     tree = parser.either()
     if isinstance(tree, Relation):
         raise FormulaError(
@@ -43,9 +55,9 @@ def parse_expression(text: str) -> Node:
     return tree
 
 
-def parse_relation(text: str) -> Relation:
+def parse_relation(text: str, tables: Tables = NO_TABLES) -> Relation:
     """The tree of a formula with at least one of `=`, `<=`, `>=`.  Raises FormulaError."""
-    tree = parse_either(text)
+    tree = parse_either(text, tables)
     if not isinstance(tree, Relation):
         raise FormulaError(
             "a relation needs '=', '<=' or '>='",
@@ -54,14 +66,50 @@ def parse_relation(text: str) -> Relation:
     return tree
 
 
-def parse_either(text: str) -> Node | Relation:
+def parse_either(text: str, tables: Tables = NO_TABLES) -> Node | Relation:
     """The tree of any formula: a relation where it has a sign of relation.  Raises FormulaError."""
-    return _Parser(text).either()
+    return _Parser(text, tables).either()
+
+
+def slope_of(name: str, tables: Tables) -> tuple[Table, tuple[int, ...]] | None:
+    """The table of two arguments and the orders of its derivative that a name stands for: `n_r`, `n_r_z`."""
+    for table in tables.values():
+        if len(table.arguments) < 2 or not name.startswith(table.name + "_"):
+            continue
+        orders = _orders(name[len(table.name) :], table.arguments)
+        if orders is not None:
+            return table, orders
+    return None
+
+
+def _orders(slopes: str, arguments: tuple[str, ...]) -> tuple[int, ...] | None:
+    """How often each argument is named in `_r_z_r`; None where something else is."""
+    if not slopes:
+        return (0,) * len(arguments)
+    for index, argument in enumerate(arguments):
+        rest = slopes.removeprefix("_" + argument)
+        if rest == slopes or (rest and not rest.startswith("_")):
+            continue
+        others = _orders(rest, arguments)
+        if others is not None:
+            return (*others[:index], others[index] + 1, *others[index + 1 :])
+    return None
+
+
+def _in_unit(tree: Node, unit: Unit) -> Node:
+    """A bare number as the argument of a table is in the unit of that argument."""
+    match tree:
+        case Number(value=value):
+            return tree if unit.factor == 1 else replace(tree, value=value * unit.factor)
+        case Negative(operand=Number() as number):
+            return replace(tree, operand=_in_unit(number, unit))
+    return tree
 
 
 class _Parser:
-    def __init__(self, text: str) -> None:
+    def __init__(self, text: str, tables: Tables) -> None:
         self.text = text
+        self.tables = tables
         self.tokens = tokens(text)
         self.place = 0
         self.depth = 0
@@ -168,11 +216,11 @@ class _Parser:
                     f"write {name.text}(…)",
                 )
             return Name(name.text, len(primes), span)
+        found = (self.tables[name.text], ()) if name.text in self.tables else slope_of(name.text, self.tables)
+        if found is not None:
+            return self.looked_up(*found, len(primes), span)
         opening = self.enter()
-        arguments = [] if self.next.text == ")" else [self.sum()]
-        while self.next.text == ",":
-            self.take()
-            arguments.append(self.sum())
+        arguments = self.listed()
         function = name.text in FUNCTIONS or name.text == "integral"
         side = self.take().text if not function and len(arguments) == 1 and self.next.text in ("+", "-") else ""
         self.close(opening)
@@ -189,6 +237,38 @@ class _Parser:
                 f"'{name.text}{primes}(…)' {wrong}", whole, "place", f"write one place: {name.text}{primes}(0)"
             )
         return Call(name.text, tuple(arguments), whole)
+
+    def listed(self) -> list[Node]:
+        """listed = [sum (',' sum)*]"""
+        arguments = [] if self.next.text == ")" else [self.sum()]
+        while self.next.text == ",":
+            self.take()
+            arguments.append(self.sum())
+        return arguments
+
+    def looked_up(self, table: Table, orders: tuple[int, ...], primes: int, named: Span) -> Node:
+        """looked_up = name primes? '(' listed ')' where the name is that of a table"""
+        opening = self.enter()
+        arguments = self.listed()
+        self.close(opening)
+        whole, wanted = self.since(named.start), len(table.arguments)
+        if len(arguments) != wanted:
+            number = "one argument" if wanted == 1 else "two arguments"
+            shown = f"{table.name}({', '.join(table.arguments)})"
+            message = f"the table '{table.name}' takes {number}, not {len(arguments) or 'none'}"
+            raise self.error(message, whole, "argument-count", f"write {shown}")
+        if primes and wanted > 1:
+            shown = " or ".join(f"{table.name}_{argument}(…)" for argument in table.arguments)
+            raise self.error(
+                f"a prime does not say by which argument '{table.name}' is derived", named, "prime", f"write {shown}"
+            )
+        orders = orders or (primes,) + (0,) * (wanted - 1)
+        if sum(orders) > ORDER_LIMIT:
+            message = f"a derivative of order {sum(orders)}; the limit is {ORDER_LIMIT}"
+            raise self.error(message, named, "order-limit")
+        units = table.argument_units or (PLAIN,) * wanted
+        measured = tuple(_in_unit(argument, unit) for argument, unit in zip(arguments, units, strict=True))
+        return Lookup(table, orders, measured, whole)
 
     # ---- what the grammar alone cannot say ----
 

@@ -5,7 +5,7 @@ from __future__ import annotations
 import re
 
 from solvers.formula.errors import FormulaError
-from solvers.formula.nodes import At, Call, Name, Negative, Node, Number, Power, Product, Relation, Sum
+from solvers.formula.nodes import At, Call, Lookup, Name, Negative, Node, Number, Power, Product, Relation, Sum
 from solvers.formula.parser import parse_expression
 
 SUM, SIGNED, PRODUCT, POWER, ATOM = range(5)
@@ -28,6 +28,8 @@ def text(tree: Node | Relation) -> str:
             return f"{name}{chr(39) * order}({text(place)}{side})"
         case Call(function=function, arguments=arguments):
             return f"{function}({_joined(arguments, ('', *[', '] * (len(arguments) - 1)), SUM, SUM)})"
+        case Lookup(arguments=arguments):
+            return f"{tree.spelling}({_joined(arguments, ('', *[', '] * (len(arguments) - 1)), SUM, SUM)})"
         case Negative(operand=operand):
             return "-" + _part(operand, PRODUCT)
         case Sum(terms=terms, minus=minus):

@@ -3,15 +3,17 @@
 import math
 
 import pytest
-from hypothesis import assume, given
+from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 
+from solvers.formula.algebra import bare
 from solvers.formula.derivative import derivative, total_derivative
 from solvers.formula.evaluate import REAL, evaluate
 from solvers.formula.nodes import FUNCTIONS, Call, Name, Negative, Number, Power, Product, Sum
 from solvers.formula.parser import parse_expression
 from solvers.formula.printer import text
 from solvers.formula.substitute import substitute
+from tests.unit.solvers.measured import TABLES
 
 POINT = {("y", 0): 0.37, ("y", 1): -0.81, ("k", 0): 1.3, ("x", 0): 0.6}
 
@@ -116,9 +118,35 @@ def test_the_total_derivative_follows_the_functions():
     assert text(total) == "k*y'^2 + 2*k*x*y'*y''"
 
 
-def test_a_table_has_no_formula():
-    with pytest.raises(ValueError, match="the derivative of the table 'n' is no formula"):
-        derivative(parse_expression("n(y, x)"), Name("y"))
+@pytest.mark.parametrize(
+    ("formula", "by", "expected"),
+    [
+        ("f(y)", "y", "f'(y)"),
+        ("f'(k*y)", "y", "f''(k*y)*k"),
+        ("f(y)*f(x)", "x", "f(y)*f'(x)"),
+        ("g(x, y)", "y", "g_v(x, y)"),
+        ("g(y, y)", "y", "g_u(y, y) + g_v(y, y)"),
+        ("g_u(x, sin(y))", "y", "g_u_v(x, sin(y))*cos(y)"),
+        ("f(k)", "y", "0"),
+    ],
+)
+def test_the_derivative_of_a_table_is_a_table(formula, by, expected):
+    slope = derivative(parse_expression(formula, TABLES), Name(by))
+    assert text(slope) == expected
+    assert slope == bare(parse_expression(expected, TABLES))
+
+
+@settings(deadline=None)
+@given(st.floats(0.1, 1.9), st.floats(0.1, 0.9))
+def test_derivatives_of_tables_agree_with_differences(y, x):
+    tree = parse_expression("f(y*x)*g(x, y^2/2) + g_u(x, y/2)", TABLES)
+    step = 1e-6
+
+    def value(tree, y):
+        return evaluate(tree, lambda name, order: {"x": x, "y": y}[name], REAL)
+
+    slope = value(derivative(tree, Name("y")), y)
+    assert slope == pytest.approx((value(tree, y + step) - value(tree, y - step)) / (2 * step), rel=1e-4, abs=1e-6)
 
 
 def test_the_caller_can_end_a_derivation():

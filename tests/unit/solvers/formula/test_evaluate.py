@@ -31,7 +31,7 @@ def test_computes(formula, value):
 
 
 def test_there_is_an_operation_for_every_function():
-    assert set(REAL) == {*FUNCTIONS, "power"}
+    assert set(REAL) == {*FUNCTIONS, "power", "table"}
 
 
 def test_a_value_at_a_place_comes_from_the_caller():

@@ -15,6 +15,7 @@ from solvers.formula.nodes import (
     FUNCTIONS,
     At,
     Call,
+    Lookup,
     Name,
     Negative,
     Number,
@@ -29,6 +30,7 @@ from solvers.formula.nodes import (
 from solvers.formula.parser import ENDLESS, parse_either, parse_expression, parse_relation
 from solvers.formula.printer import text
 from solvers.formula.tokens import REFUSED, read_name
+from tests.unit.solvers.measured import TABLES
 
 
 def bare(tree):
@@ -252,8 +254,17 @@ def call(parts):
         lists = st.lists(parts, min_size=count, max_size=4 if function in ENDLESS else count)
         return lists.map(lambda given: Call(function, tuple(given)))
 
-    tables = st.lists(parts, min_size=2, max_size=3).map(lambda given: Call("table", tuple(given)))
-    return st.one_of(st.sampled_from([*FUNCTIONS, "integral"]).flatmap(arguments), tables)
+    others = st.lists(parts, min_size=2, max_size=3).map(lambda given: Call("other", tuple(given)))
+    return st.one_of(st.sampled_from([*FUNCTIONS, "integral"]).flatmap(arguments), others, lookup(parts))
+
+
+def lookup(parts):
+    def uses(name):
+        count = len(TABLES[name].arguments)
+        orders = st.tuples(*[st.integers(0, 4)] * count)
+        return st.builds(Lookup, st.just(TABLES[name]), orders, st.tuples(*[parts] * count))
+
+    return st.sampled_from([*TABLES]).flatmap(uses)
 
 
 def without_primes(tree):
@@ -291,7 +302,7 @@ def relations(draw):
 
 @given(st.one_of(expressions, relations()))
 def test_what_is_printed_reads_as_the_same_tree(tree):
-    assert bare(parse_either(text(tree))) == tree
+    assert bare(parse_either(text(tree), TABLES)) == tree
 
 
 @given(st.text(alphabet="xyT12.0e+-*/^(),='<> \u2032≤·sinmapt_", max_size=40))
