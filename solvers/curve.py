@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -31,13 +31,18 @@ class Curve:
         """
         places = np.asarray(places, dtype=float)
         owner = np.clip(np.searchsorted(self.breaks, places, side="left") - 1, 0, len(self.breaks) - 2)
-        values = np.empty_like(places)
-        for interval in np.unique(owner):
-            inside = owner == interval
-            left, right = self.breaks[interval], self.breaks[interval + 1]
-            local = (2 * places[inside] - left - right) / (right - left)
-            coefficients = self.functions[name][interval]
-            if derivative:
-                coefficients = legendre.legder(coefficients, derivative) * (2 / (right - left)) ** derivative
-            values[inside] = legendre.legval(local, coefficients)
-        return values
+        left, right = self.breaks[owner], self.breaks[owner + 1]
+        local = (2 * places - left - right) / (right - left)
+        coefficients = side_by_side(self.functions[name])
+        if derivative:
+            coefficients = np.asarray(legendre.legder(coefficients, derivative, axis=1), dtype=float)
+        values = (legendre.legvander(local, coefficients.shape[1] - 1) * coefficients[owner]).sum(axis=-1)
+        return np.asarray(values * (2 / (right - left)) ** derivative)
+
+
+def side_by_side(pieces: Sequence[Array]) -> Array:
+    """Legendre coefficients of n intervals (each degrees x ...) as one array (n x degrees x ...), filled with zeros."""
+    table = np.zeros((len(pieces), max(len(piece) for piece in pieces), *pieces[0].shape[1:]))
+    for row, piece in zip(table, pieces, strict=True):
+        row[: len(piece)] = piece
+    return table

@@ -15,6 +15,7 @@ Theory, section 12 (energy and length).  (Both from memory.)
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass, replace
 from fractions import Fraction
 
@@ -53,11 +54,11 @@ class Gauged:
     squared: bool
 
 
-def in_parametric_form(problem: Problem, sizes: dict[str, float], squared: bool) -> Gauged | None:
+def in_parametric_form(problem: Problem, sizes: Callable[[], dict[str, float]], squared: bool) -> Gauged | None:
     """The problem in parametric form, or None where that does not apply.
 
     It applies to pure variational problems of first order whose integrand grows linearly with the derivatives and that
-    name no place between the ends.  `sizes` are typical sizes of the independent variable and of the unknowns;
+    name no place between the ends.  `sizes` finds typical sizes of the independent variable and of the unknowns;
     `squared` asks for the first of the two gauges, which is granted where it is right.
     """
     if problem.integrand is None or problem.dynamics or len(problem.places) != 2:
@@ -82,9 +83,9 @@ def in_parametric_form(problem: Problem, sizes: dict[str, float], squared: bool)
     constraints.append(Condition(Name(x, 1), ZERO, None, f"{x} runs forward", ""))
     parameters = list(problem.parameters)
     if not squared:
-        two = Number(2.0, "2")
+        two, size = Number(2.0, "2"), sizes()
         squares = [
-            Power(Product((Name(name, 1), Number(sizes[name], "")), (False, True)), two) for name in (x, *sorted(names))
+            Power(Product((Name(name, 1), Number(size[name], "")), (False, True)), two) for name in (x, *sorted(names))
         ]
         body = Sum((*squares, Power(Name(SPEED), two)), (*[False] * len(squares), True))
         constraints.append(Condition(body, ZERO, ZERO, "constant speed along the curve", ""))

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import time
+from functools import cache
 
 import numpy as np
 
@@ -54,8 +55,9 @@ def _solve_once(problem: Problem, watch: Watch | None) -> Solution:
         pursuit = _in_given_form(with_slacks(problem), watch, deadline)
         if pursuit.end in (End.CONVERGED, End.STOPPED, End.TIME):
             return _solution(problem, pursuit, None, began)
+    sizes = cache(lambda: _sizes(problem))
     for squared in (True, False):
-        gauged = in_parametric_form(problem, _sizes(problem), squared)
+        gauged = in_parametric_form(problem, sizes, squared)
         if gauged is None or (squared and not gauged.squared):
             continue
         pursuit = _in_given_form(gauged.problem, watch, deadline)

@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from solvers.collocation import Family
-from solvers.curve import Curve
+from solvers.curve import Curve, side_by_side
 from solvers.functions import Compiled
 from solvers.ipopt import Minimum, Start
 from solvers.layout import Layout, row_order
@@ -225,13 +225,11 @@ def _sample(breaks: Array, modes: list[Array], places: Array) -> Array:
     """Piecewise polynomials at places of another mesh (len(places) x components)."""
     rounding = 4 * np.finfo(float).eps * np.abs(breaks).max()  # a point at a right end stays with what ends there
     owner = np.clip(np.searchsorted(breaks, places - rounding, side="left") - 1, 0, len(modes) - 1)
-    values = np.empty((len(places), modes[0].shape[1]))
-    for k in np.unique(owner):
-        inside = owner == k
-        left, right = breaks[k], breaks[k + 1]
-        local = np.clip((2 * places[inside] - left - right) / (right - left), -1.0, 1.0)
-        values[inside] = np.polynomial.legendre.legvander(local, len(modes[k]) - 1) @ modes[k]
-    return values
+    left, right = breaks[owner], breaks[owner + 1]
+    local = np.clip((2 * places - left - right) / (right - left), -1.0, 1.0)
+    coefficients = side_by_side(modes)
+    shapes = np.polynomial.legendre.legvander(local, coefficients.shape[1] - 1)
+    return np.asarray((shapes[:, None, :] @ coefficients[owner])[:, 0, :])
 
 
 def distance(now: Trajectory, before: Trajectory) -> float:

@@ -60,7 +60,7 @@ def value_of(tree, values, where):
 @pytest.mark.parametrize("integrand", LINEAR)
 def test_the_form_in_s_is_the_integrand_times_the_speed_of_x(integrand):
     problem = flat(integrand)
-    gauged = in_parametric_form(problem, SIZES, squared=False)
+    gauged = in_parametric_form(problem, lambda: SIZES, squared=False)
     rng = np.random.default_rng(4)
     for _ in range(5):
         x, y, z, slope, twist, speed = rng.uniform(0.2, 2.0, 6)
@@ -74,7 +74,7 @@ def test_the_form_in_s_is_the_integrand_times_the_speed_of_x(integrand):
 @pytest.mark.parametrize("integrand", [text for text in LINEAR if "slope" not in text and text != "y'^2/(1 + y')"])
 def test_the_form_in_s_lives_on_vertical_tangents(integrand):
     problem = flat(integrand)
-    gauged = in_parametric_form(problem, SIZES, squared=False)
+    gauged = in_parametric_form(problem, lambda: SIZES, squared=False)
     upright = {("x", 0): 0.5, ("y", 0): 0.7, ("z", 0): 0.9, ("x", 1): 0.0, ("y", 1): 1.5, ("z", 1): 0.5, ("g", 0): 9.81}
     assert np.isfinite(value_of(gauged.problem.integrand, upright, dict(gauged.problem.where)))
 
@@ -91,7 +91,7 @@ def test_the_form_in_s_lives_on_vertical_tangents(integrand):
     ],
 )
 def test_other_growth_stays_as_it_is(integrand):
-    assert in_parametric_form(flat(integrand), SIZES, squared=True) is None
+    assert in_parametric_form(flat(integrand), lambda: SIZES, squared=True) is None
 
 
 @pytest.mark.parametrize(
@@ -106,26 +106,26 @@ def test_other_growth_stays_as_it_is(integrand):
     ids=("dynamics", "second order", "no integrand", "way point", "quadratic integral"),
 )
 def test_where_it_does_not_apply(members):
-    assert in_parametric_form(flat("sqrt(1 + y'^2)", **members), SIZES, squared=False) is None
+    assert in_parametric_form(flat("sqrt(1 + y'^2)", **members), lambda: SIZES, squared=False) is None
 
 
 def test_the_square_is_granted_only_where_it_is_right():
     """Where anything but the integral counts, its square has other extremals."""
     whole = "sqrt(1 + y'^2)"
-    assert in_parametric_form(flat(whole), SIZES, squared=True).squared
+    assert in_parametric_form(flat(whole), lambda: SIZES, squared=True).squared
     for members in (
         {"functional": {"seek": "maximum", "integrand": whole}},
         {"functional": {"seek": "stationary", "integrand": whole}},
         {"functional": {"integrand": whole, "endpoint": "y(1)^2"}, "endpoints": ["y(0) = 1"]},
         {"constraints": [f"integral({whole}) = 2"], "functional": {"integrand": f"y*{whole}"}},
     ):
-        gauged = in_parametric_form(flat(whole, **members), SIZES, squared=True)
+        gauged = in_parametric_form(flat(whole, **members), lambda: SIZES, squared=True)
         assert not gauged.squared
         assert SPEED in {parameter.name for parameter in gauged.problem.parameters}
 
 
 def test_names_and_ends_of_the_form():
-    gauged = in_parametric_form(flat("sqrt(1 + y'^2)"), SIZES, squared=True)
+    gauged = in_parametric_form(flat("sqrt(1 + y'^2)"), lambda: SIZES, squared=True)
     problem = gauged.problem
     assert problem.independent == PARAMETER
     assert [unknown.name for unknown in problem.unknowns] == ["x", "y"]
@@ -137,7 +137,7 @@ def test_names_and_ends_of_the_form():
 
 def test_integral_conditions_are_integrals_over_s():
     problem = flat("y*sqrt(1 + y'^2)", constraints=["integral(sqrt(1 + y'^2)) = 2", "integral(y)*y(1) <= 9"])
-    gauged = in_parametric_form(problem, SIZES, squared=False)
+    gauged = in_parametric_form(problem, lambda: SIZES, squared=False)
     values = {("x", 0): 0.3, ("y", 0): 1.4, ("x", 1): 0.8, ("y", 1): -0.6}
     found = [
         value_of(node.arguments[0], values, {})
@@ -155,7 +155,7 @@ def test_a_free_end_stays_tied_to_its_parameter():
         parameters={"b": {"within": [0.1, 9]}},
         endpoints=["y(0) = 1", "y(b) = 2*b - 3"],
     )
-    gauged = in_parametric_form(problem, SIZES, squared=True)
+    gauged = in_parametric_form(problem, lambda: SIZES, squared=True)
     tied = [c for c in gauged.problem.endpoints if any(isinstance(n, Name) and n.name == "b" for n in walk(c.body))]
     assert len(tied) == 2
     path = solved_on(gauged.problem, uniform(1, 4, 4))
@@ -176,12 +176,12 @@ def at_rest(problem):
 
 
 def test_the_curve_is_at_rest_where_the_integrand_is_infinite():
-    falling = in_parametric_form(flat("sqrt(1 + y'^2)", **FALL), SIZES, squared=True)
+    falling = in_parametric_form(flat("sqrt(1 + y'^2)", **FALL), lambda: SIZES, squared=True)
     assert at_rest(falling.problem) == {("x", 0.0), ("y", 0.0)}
     rising = flat("sqrt(1 + y'^2)", **FALL | {"endpoints": ["y(0) = 1", "y(1) = 0"]})
-    assert at_rest(in_parametric_form(rising, SIZES, squared=True).problem) == {("x", 1.0), ("y", 1.0)}
+    assert at_rest(in_parametric_form(rising, lambda: SIZES, squared=True).problem) == {("x", 1.0), ("y", 1.0)}
     pushed = flat("sqrt(1 + y'^2)", **FALL | {"endpoints": ["y(0) = 1/2", "y(1) = 1"]})
-    assert at_rest(in_parametric_form(pushed, SIZES, squared=True).problem) == set()
+    assert at_rest(in_parametric_form(pushed, lambda: SIZES, squared=True).problem) == set()
 
 
 SAME = {
@@ -200,7 +200,7 @@ def test_both_gauges_give_the_same_value(name):
     problem = flat("sqrt(1 + y'^2)", **members)
     found = []
     for squared in (True, False):
-        gauged = in_parametric_form(problem, SIZES, squared)
+        gauged = in_parametric_form(problem, lambda: SIZES, squared)
         pursuit = pursue(gauged.problem, None, time.perf_counter() + 30, meshes=4)
         assert pursuit.solved
         found.append(np.sqrt(pursuit.paths[-1].value) if gauged.squared else pursuit.paths[-1].value)
@@ -214,11 +214,11 @@ def test_both_gauges_give_the_same_value(name):
 def test_a_guess_is_told_in_s():
     points = flat("sqrt(1 + y'^2)", independent={"name": "x", "from": 2, "to": 4},
                   endpoints=["y(2) = 1", "y(4) = 2"], guess={"y": [[2, 1], [3, 5], [4, 2]]})  # fmt: skip
-    gauged = in_parametric_form(points, SIZES, squared=True)
+    gauged = in_parametric_form(points, lambda: SIZES, squared=True)
     assert gauged.problem.unknowns[1].guess == ((0, 1), (0.5, 5), (1, 2))
     formula = flat("sqrt(1 + y'^2)", independent={"name": "x", "from": 2, "to": 4},
                    endpoints=["y(2) = 1", "y(4) = 2"], guess={"y": "x^2"})  # fmt: skip
-    gauged = in_parametric_form(formula, SIZES, squared=True)
+    gauged = in_parametric_form(formula, lambda: SIZES, squared=True)
     assert value_of(gauged.problem.unknowns[1].guess, {(PARAMETER, 0): 0.5}, {}) == pytest.approx(9)
 
 
@@ -226,7 +226,7 @@ def test_the_guess_reaches_from_end_to_end_also_where_an_end_is_free():
     """A guess that stands still would be undefined everywhere."""
     problem = flat("sqrt(1 + y'^2)", independent={"name": "x", "from": 0, "to": "b"}, guess={"y": "x + b"},
                    parameters={"b": {"within": [0.1, 9]}}, endpoints=["y(0) = 1", "y(b) = 2*b - 3"])  # fmt: skip
-    x, y = in_parametric_form(problem, SIZES, squared=True).problem.unknowns
+    x, y = in_parametric_form(problem, lambda: SIZES, squared=True).problem.unknowns
     at = {(PARAMETER, 0): 0.25, ("b", 0): 4.0}
     assert value_of(x.guess, at, {}) == pytest.approx(1)
     assert value_of(y.guess, at, {}) == pytest.approx(5)

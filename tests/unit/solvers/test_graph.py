@@ -10,7 +10,7 @@ from solvers.graph import as_graph, checks_on_graph, prices_of_original
 from solvers.solution import Check, Price, Status
 from tests.unit.solvers.problems import shape
 
-GAUGED = in_parametric_form(shape(endpoints=["y(0) = 0", "y(3) = 1"]), {"x": 1.0, "y": 1.0}, squared=True)
+GAUGED = in_parametric_form(shape(endpoints=["y(0) = 0", "y(3) = 1"]), lambda: {"x": 1.0, "y": 1.0}, squared=True)
 
 
 def fitted(**functions):

@@ -67,7 +67,7 @@ PROBLEMS = {
         functional={"integrand": "u^2*t*m", "endpoint": "x(m)^2*m"},
         endpoints=["x(0) = 0", "x(m) = m^2", "x(1) = 1"],
     ),
-    "control at an end": lambda: in_parametric_form(FALL, {}, squared=True).problem,
+    "control at an end": lambda: in_parametric_form(FALL, dict, squared=True).problem,
     "maximum": lambda: stated(functional={"seek": "maximum", "integrand": "x*u - u^2", "endpoint": "x(1)^3"}),
     "implicit dynamics": lambda: stated(dynamics=["x'*exp(x') = u*x"]),
     "no functional along the curve": lambda: stated(functional={"endpoint": "x(1)^2"}),
