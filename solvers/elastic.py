@@ -14,6 +14,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from solvers.deadline import Deadline
 from solvers.entries import Entries, Pattern
 from solvers.ipopt import LEAST_SQUARES_MULTIPLIERS, Iterate, Minimum, Start, minimise
 from solvers.lowering import Quantity, primed
@@ -139,7 +140,7 @@ def groups(program: Program) -> list[Group]:
 
 
 def least_violation(
-    program: Program, z: Array, *, time_limit: float, watch: Callable[[Iterate], bool] | None = None
+    program: Program, z: Array, *, deadline: Deadline, watch: Callable[[Iterate], bool] | None = None
 ) -> LeastViolation:
     """Minimise the sum of the slacks from a start (scaled)."""
     parts = groups(program)
@@ -170,7 +171,7 @@ def least_violation(
         numbers=_Numbers(program, hard, relaxed, held, owners, signs, len(parts)),
     )
     start = np.concatenate([z, np.ones(len(parts))])
-    minimum = minimise(elastic, Start(start), time_limit=time_limit, watch=watch, options=LEAST_SQUARES_MULTIPLIERS)
+    minimum = minimise(elastic, Start(start), deadline=deadline, watch=watch, options=LEAST_SQUARES_MULTIPLIERS)
     answer, amounts = minimum.z[:size], minimum.z[size:]
     findings = _findings(program, parts, owner_of_variable, answer, amounts)
     return LeastViolation(answer, float(np.sum(amounts[amounts > 1e-7])), findings, minimum)

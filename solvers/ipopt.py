@@ -17,6 +17,7 @@ import casadi as ca
 import numpy as np
 from numpy.typing import NDArray
 
+from solvers.deadline import FOREVER, Deadline
 from solvers.entries import Pattern
 
 Array = NDArray[np.float64]
@@ -114,6 +115,9 @@ OPTIONS: dict[str, Any] = {
 
 LEAST_SQUARES_MULTIPLIERS: dict[str, Any] = {"ipopt.constr_mult_init_max": 1000.0}
 """First multipliers by least squares: another try where those of zero lead nowhere."""
+
+LEAST_SECONDS = 0.05
+"""Ipopt wants a positive limit."""
 
 WARM: dict[str, Any] = {
     "ipopt.warm_start_init_point": "yes",
@@ -255,7 +259,7 @@ def minimise(
     program: Bounded,
     start: Start,
     *,
-    time_limit: float = np.inf,
+    deadline: Deadline = FOREVER,
     watch: Callable[[Iterate], bool] | None = None,
     options: dict[str, Any] | None = None,
 ) -> Minimum:
@@ -266,8 +270,9 @@ def minimise(
     if warm:
         settings |= WARM
     settings |= options or {}
-    if np.isfinite(time_limit):
-        settings["ipopt.max_wall_time"] = max(time_limit, 0.05)
+    for name, left in (("ipopt.max_wall_time", deadline.left), ("ipopt.max_cpu_time", deadline.work_left)):
+        if np.isfinite(left):
+            settings[name] = max(left, LEAST_SECONDS)
     errors: list[Exception] = []
     if watch is not None:
         settings["iteration_callback"] = _watcher(program, watch, errors)

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import time
 from collections.abc import Callable
 from dataclasses import dataclass, field, replace
 from enum import Enum
@@ -13,6 +12,7 @@ from numpy.typing import NDArray
 
 from solvers import refinement
 from solvers.collocation import Family
+from solvers.deadline import Deadline
 from solvers.elastic import LeastViolation, least_violation
 from solvers.functions import Compiled, compile_problem
 from solvers.guess import guesses
@@ -37,7 +37,7 @@ GROWTH = 2.5
 """How much larger, in points, one mesh may be than the one before."""
 CURVE_ROOM = 100.0
 """How much more than the tolerance the curve may still have moved: a switch that hardly matters moves freely."""
-FEW_ITERATIONS = 200
+FEW_ITERATIONS = 100
 """Iterations within which a solve from a related trajectory must be through: it starts near its end."""
 LEAST_GAIN = 0.05
 """How much of the last change of the value counts as its error at the least, however much the mesh has improved."""
@@ -88,11 +88,22 @@ class Pursuit:
         path = self.paths[-1]
         return max(abs(path.value), 1e-3 * abs(path.program.value_scale))
 
+    @property
+    def value_met(self) -> bool:
+        """Whether the value is as exact as was asked for, or as the minimiser can tell."""
+        floor = 2 * FLOOR * abs(self.paths[-1].program.value_scale)
+        return self.value_error <= self.problem.options.tolerance * self.value_size + floor
+
+    @property
+    def shown(self) -> bool:
+        """Whether the stated errors allow a verdict: where the value is flat, the curve may be known less exactly."""
+        return self.solved and self.value_met and self.curve_error <= float(np.sqrt(self.problem.options.tolerance))
+
 
 def pursue(
     problem: Problem,
     watch: Watch | None,
-    deadline: float,
+    deadline: Deadline,
     *,
     meshes: int = MESHES,
     start: Trajectory | None = None,
@@ -110,7 +121,7 @@ def pursue(
     return pursuit
 
 
-def go_on(pursuit: Pursuit, watch: Watch | None, deadline: float, meshes: int = MESHES) -> Pursuit:
+def go_on(pursuit: Pursuit, watch: Watch | None, deadline: Deadline, meshes: int = MESHES) -> Pursuit:
     """Refine a pursuit further that was stopped after a few meshes."""
     _go_on(pursuit, _Minimiser(pursuit, watch, deadline), meshes)
     return pursuit
@@ -129,7 +140,7 @@ def _go_on(pursuit: Pursuit, minimise_: _Minimiser, meshes: int) -> None:
         if mesh is None:
             pursuit.end = End.POINTS
             return
-        if time.perf_counter() + pursuit.steps[-1].seconds * 1.2 > minimise_.deadline:
+        if minimise_.deadline.over or minimise_.deadline.left < 1.2 * pursuit.steps[-1].seconds:
             pursuit.end = End.TIME
             return
         step = _next(path, mesh, minimise_)
@@ -156,7 +167,7 @@ def _add(pursuit: Pursuit, minimise_: _Minimiser, program: Program, minimum: Min
 class _Minimiser:
     """Minimises programs, passes signs of life on and keeps count."""
 
-    def __init__(self, pursuit: Pursuit, watch: Watch | None, deadline: float) -> None:
+    def __init__(self, pursuit: Pursuit, watch: Watch | None, deadline: Deadline) -> None:
         self.pursuit, self.watch, self.deadline = pursuit, watch, deadline
         self.stopped = False
 
@@ -166,14 +177,13 @@ class _Minimiser:
             self.pursuit.last = (program, minimum)
             if minimum.outcome is not Outcome.FAILED:
                 return minimum
-        left = self.deadline - time.perf_counter()
-        minimum = minimise(program, start, time_limit=left, watch=self._hear(program), options=options)
+        minimum = minimise(program, start, deadline=self.deadline, watch=self._hear(program), options=options)
         self.pursuit.last = (program, minimum)
         return minimum
 
     def relax(self, program: Program, z: Array) -> LeastViolation:
         """The curve that violates the conditions least."""
-        return least_violation(program, z, time_limit=self.deadline - time.perf_counter(), watch=self._hear(program))
+        return least_violation(program, z, deadline=self.deadline, watch=self._hear(program))
 
     def _hear(self, program: Program) -> Callable[[Iterate], bool]:
         mesh = program.mesh
@@ -379,8 +389,7 @@ def _settled(pursuit: Pursuit) -> End | None:
     """Whether to stop refining."""
     tolerance = pursuit.problem.options.tolerance
     errors = [step.error or 0.0 for step in pursuit.steps]
-    floor = 2 * FLOOR * abs(pursuit.paths[-1].program.value_scale)
-    value_met = pursuit.value_error <= tolerance * pursuit.value_size + floor
+    value_met = pursuit.value_met
     if value_met and errors[-1] <= tolerance and pursuit.curve_error <= tolerance:
         return End.CONVERGED
     stuck = len(errors) > 6 and min(errors[-6:]) > 0.3 * errors[-7]

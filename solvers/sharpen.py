@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from solvers.collocation import Family
+from solvers.deadline import Deadline
 from solvers.functions import linear_controls
 from solvers.mesh import Interval, Mesh, interval
 from solvers.problem import Problem
@@ -21,7 +22,7 @@ AGREEMENT = 1e-2
 """How far the value may move when the structure is made exact, relative to its size."""
 
 
-def sharpen(base: Pursuit, watch: Watch | None, deadline: float) -> Pursuit | None:
+def sharpen(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit | None:
     """A pursuit of the same problem with its switches as unknowns; None where there are none or that leads nowhere."""
     path = base.paths[-1]
     if not signals(path):
@@ -45,7 +46,7 @@ def sharpen(base: Pursuit, watch: Watch | None, deadline: float) -> Pursuit | No
     return None
 
 
-def _calmed(base: Pursuit, watch: Watch | None, deadline: float) -> Iterator[Trajectory]:
+def _calmed(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Iterator[Trajectory]:
     """Paths to read the structure off: softened ones where controls act linearly, else the plain one."""
     path = base.paths[-1]
     linear = linear_controls(base.compiled)
@@ -58,7 +59,7 @@ def _calmed(base: Pursuit, watch: Watch | None, deadline: float) -> Iterator[Tra
             yield calm.paths[-1]
 
 
-def _with_structure(base: Pursuit, path: Trajectory, watch: Watch | None, deadline: float) -> Pursuit | None:
+def _with_structure(base: Pursuit, path: Trajectory, watch: Watch | None, deadline: Deadline) -> Pursuit | None:
     """Read switches off a path and solve with them; None where there are none or the answer is not believable.
 
     A switch that ends at the edge of the room it was given is looked at again from there.

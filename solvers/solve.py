@@ -10,6 +10,7 @@ import numpy as np
 from solvers import checks
 from solvers.checks.redundancy import unambiguous
 from solvers.curve import Curve
+from solvers.deadline import Deadline, in_seconds
 from solvers.diagnosis import diagnose
 from solvers.extremals import solve_from_starts
 from solvers.functions import compile_problem
@@ -50,7 +51,7 @@ def solve(problem: Problem, watch: Watch | None = None) -> Solution:
 def _solve_once(problem: Problem, watch: Watch | None) -> Solution:
     """Solve a problem from its one start."""
     began = time.perf_counter()
-    deadline = began + problem.options.time_limit
+    deadline = in_seconds(problem.options.time_limit)
     if problem.seek is Seek.STATIONARY:  # no jump can gain here, and Newton's method goes straighter in few variables
         pursuit = _in_given_form(with_slacks(problem), watch, deadline)
         if pursuit.end in (End.CONVERGED, End.STOPPED, End.TIME):
@@ -66,26 +67,32 @@ def _solve_once(problem: Problem, watch: Watch | None) -> Solution:
     return _solution(problem, _in_given_form(with_slacks(problem), watch, deadline), None, began)
 
 
-def _in_given_form(problem: Problem, watch: Watch | None, deadline: float) -> Pursuit:
+def _in_given_form(problem: Problem, watch: Watch | None, deadline: Deadline) -> Pursuit:
     """Plain meshes first; where controls switch, then the switches as unknowns; else plain meshes to the end."""
-    began = time.perf_counter()
+    began = time.process_time()
     pursuit = pursue(problem, watch, deadline, meshes=3)
     if pursuit.solved and (pursuit.steps[-1].error or 0.0) <= NEARLY * problem.options.tolerance:
         pursuit = pursuit if pursuit.end is End.CONVERGED else go_on(pursuit, watch, deadline, 3)
     if not pursuit.solved or pursuit.end in (End.CONVERGED, End.STOPPED, End.TIME):
         return pursuit
-    now = time.perf_counter()
-    room = min(SHARE * (deadline - now), PATIENCE * (now - began) + 1.0)
-    sharp = sharpen(pursuit, watch, now + room)
+    room = min(SHARE * deadline.left, PATIENCE * (time.process_time() - began) + 1.0)
+    sharp = sharpen(pursuit, watch, deadline.within(room))
     if sharp is not None:
         sharp.steps[:0] = pursuit.steps
         sharp.iterations += pursuit.iterations
-        if sharp.end is End.TIME and time.perf_counter() < deadline and sharp.value_met_before:
+        if sharp.end is End.TIME and not deadline.over and sharp.value_met_before:
             sharp.end = End.SETTLED  # the room for this search was over, not the time of the run
-        if sharp.end in (End.CONVERGED, End.SETTLED):
+        if sharp.end is End.CONVERGED or (sharp.end is End.SETTLED and sharp.shown):
             return sharp
     plain = go_on(pursuit, watch, deadline)
-    return sharp if sharp is not None and sharp.value_error < plain.value_error else plain
+    return plain if sharp is None or _nearer(plain, sharp) else sharp
+
+
+def _nearer(plain: Pursuit, sharp: Pursuit) -> bool:
+    """Whether plain meshes have come nearer to the tolerance than those with switches."""
+    if End.CONVERGED in (plain.end, sharp.end) or plain.shown != sharp.shown:
+        return plain.end is End.CONVERGED or (plain.shown and sharp.end is not End.CONVERGED)
+    return plain.value_error <= sharp.value_error
 
 
 def _sizes(problem: Problem) -> dict[str, float]:

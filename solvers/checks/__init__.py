@@ -5,7 +5,6 @@
 
 from __future__ import annotations
 
-import time
 from collections.abc import Callable
 
 import numpy as np
@@ -23,6 +22,7 @@ from solvers.checks import (
     stationarity,
 )
 from solvers.checks.sampling import Sampler
+from solvers.deadline import Deadline
 from solvers.problem import Problem
 from solvers.pursuit import FLOOR
 from solvers.solution import Check, Status
@@ -57,11 +57,11 @@ def run(
 
     `original` is the problem as stated where the mesh is of an equivalent form: convexity depends on the form.
     `value_error` (SI) and `curve_error` (relative) are what the refinement states, None where there was no second mesh.
-    `budget` is how many seconds they may take in all, at first a second or a fifth of the time limit.  What the time
-    does not suffice for has not been shown: a feasibility or first-order check then fails, one of second order says
-    nothing.  Nor does that one where the curve is not even feasible: neighbours of a wrong curve prove nothing.
+    `budget` is how many seconds of processor time they may take in all, at first a second or a fifth of the time limit.
+    What it does not suffice for has not been shown: a feasibility or first-order check then fails, one of second order
+    says nothing.  Nor does that one where the curve is not even feasible: neighbours of a wrong curve prove nothing.
     """
-    deadline = time.perf_counter() + (_budget(path) if budget is None else budget)
+    deadline = Deadline().within(_budget(path) if budget is None else budget)
     try:
         sampler = Sampler(path)
         size = max(abs(path.value), 1e-3 * abs(path.program.value_scale))
@@ -100,9 +100,9 @@ def _budget(path: Trajectory) -> float:
     return max(1.0, 0.2 * path.program.compiled.lowered.problem.options.time_limit)
 
 
-def _made(name: str, one: Callable[[], Check], deadline: float) -> Check:
+def _made(name: str, one: Callable[[], Check], deadline: Deadline) -> Check:
     """One check, whatever happens."""
-    if time.perf_counter() > deadline and name not in INSTANT:
+    if deadline.over and name not in INSTANT:
         status = Status.NOT_APPLICABLE if name in OPTIONAL else Status.FAILED
         return Check(name, status, "Not made: the time was over.")
     try:

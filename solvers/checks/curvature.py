@@ -20,7 +20,6 @@ section 16.2 (from memory).
 
 from __future__ import annotations
 
-import time
 from dataclasses import replace
 from typing import TYPE_CHECKING
 
@@ -29,6 +28,7 @@ from numpy.typing import NDArray
 
 from solvers.checks import legendre
 from solvers.checks.sampling import Sampler
+from solvers.deadline import FOREVER, Deadline
 from solvers.solution import Check, Status
 
 if TYPE_CHECKING:
@@ -47,11 +47,11 @@ FINE_MARGIN = 1e-7
 LARGEST = 60_000
 
 
-def check(sampler: Sampler, deadline: float = float("inf"), curve_error: float = 0.0) -> Check:
+def check(sampler: Sampler, deadline: Deadline = FOREVER, curve_error: float = 0.0) -> Check:
     """Passed where the second variation is positive, failed where a direction is proved negative.
 
     `curve_error` (relative) is how well the curve is known: what a direction gains must stand out against it.
-    `deadline` is on the clock of `time.perf_counter`; what is not decided by then stays undecided.
+    What is not decided at the deadline stays undecided.
     """
     try:
         return _decided(sampler, deadline, max(MARGIN, NOTICEABLE * curve_error))
@@ -59,7 +59,7 @@ def check(sampler: Sampler, deadline: float = float("inf"), curve_error: float =
         return Check(NAME, Status.NOT_APPLICABLE, "The second variation could not be decided in the time there was.")
 
 
-def _decided(sampler: Sampler, deadline: float, margin: float) -> Check:
+def _decided(sampler: Sampler, deadline: Deadline, margin: float) -> Check:
     from solvers.checks import inertia  # here, so that a worker that waits has not loaded SciPy
 
     program = sampler.path.program
@@ -104,13 +104,13 @@ def _sentence(sampler: Sampler, second: Second, free: Flags) -> str:
     return "The second variation is positive on all variations that keep the conditions: no conjugate point."
 
 
-def _conjugate(sampler: Sampler, second: Second, free: Flags, rows: Flags, margin: float, deadline: float) -> float:
+def _conjugate(sampler: Sampler, second: Second, free: Flags, rows: Flags, margin: float, deadline: Deadline) -> float:
     """The first break such that a variation that vanishes beyond it is negative, by bisection (as far as time goes)."""
     from solvers.checks import inertia
 
     where = sampler.path.program.layout
     low, high = 0, sampler.count
-    while high - low > 1 and time.perf_counter() < deadline:
+    while high - low > 1 and not deadline.over:
         middle = (low + high) // 2
         kept = free.copy()
         kept[where.nodes[middle, 0] if sampler.point.states else where.controls[where.first[middle], 0] :] = False

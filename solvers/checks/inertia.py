@@ -6,7 +6,6 @@ when a second variation is looked at.
 
 from __future__ import annotations
 
-import time
 from collections.abc import Callable
 from dataclasses import dataclass
 
@@ -18,6 +17,7 @@ from scipy.sparse.linalg import ArpackError, LinearOperator, eigsh, lsqr, splu
 
 from solvers.checks.sampling import Sampler
 from solvers.checks.variation import second_variation
+from solvers.deadline import FOREVER, Deadline
 
 Array = NDArray[np.float64]
 Flags = NDArray[np.bool_]
@@ -123,7 +123,7 @@ def _pushed_throughout(sampler: Sampler, resting: Flags, bounds: Array, least: A
 
 
 def count_negative(
-    second: Second, free: Flags, rows: Flags, shift: float, deadline: float = float("inf")
+    second: Second, free: Flags, rows: Flags, shift: float, deadline: Deadline = FOREVER
 ) -> Count | None:
     """Negative directions of hessian + shift * metric on the free variables where the rows keep their values.
 
@@ -134,7 +134,7 @@ def count_negative(
     columns = np.concatenate([inside, border])
     if not len(columns):
         return Count(0, None)
-    if time.perf_counter() > deadline:
+    if deadline.over:
         raise TimeoutError
     local, coupling = _normal(second.jacobian[near][:, columns]), _normal(second.jacobian[far][:, columns])
     hessian = second.hessian[columns][:, columns] + shift * second.metric[columns][:, columns]
@@ -148,7 +148,7 @@ def count_negative(
         return None
     moved = np.empty_like(side)
     for column in range(side.shape[1]):  # one by one: all at once could take long beyond the deadline
-        if time.perf_counter() > deadline:
+        if deadline.over:
             raise TimeoutError
         moved[:, column] = solve(side[:, column])
     rest = corner - side.T @ moved  # Schur complement of the band
@@ -158,7 +158,7 @@ def count_negative(
 
     def inverse(vector: Array) -> Array:
         """The whole matrix's inverse, by blocks."""
-        if time.perf_counter() > deadline:
+        if deadline.over:
             raise TimeoutError
         inner = solve(vector[:size])
         outer = np.linalg.lstsq(rest, vector[size:] - side.T @ inner, rcond=None)[0] if len(rest) else vector[size:]

@@ -11,7 +11,6 @@ Reference: Hairer, Norsett, Wanner (1993), Solving Ordinary Differential Equatio
 
 from __future__ import annotations
 
-import time
 from itertools import pairwise
 
 import numpy as np
@@ -19,6 +18,7 @@ from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
 from solvers.checks.sampling import HALF_WEIGHTS, Sampler
+from solvers.deadline import FOREVER, Deadline
 from solvers.evaluation import mapped
 from solvers.solution import Check, Status
 
@@ -32,7 +32,7 @@ PARTS = np.array([2, 4, 6, 8])
 """Into how many parts the midpoint rule divides a step: extrapolated, its error is of order eight."""
 
 
-def check(sampler: Sampler, deadline: float = float("inf")) -> Check:
+def check(sampler: Sampler, deadline: Deadline = FOREVER) -> Check:
     """The largest end mismatch of an interval relative to the size of the state, against ten times the tolerance."""
     threshold = 10 * sampler.tolerance
     n = sampler.point.states
@@ -68,12 +68,12 @@ def check(sampler: Sampler, deadline: float = float("inf")) -> Check:
     return Check(NAME, Status.PASSED if passed else Status.FAILED, what + ".", figure, threshold, place, subject)
 
 
-def _integrated(sampler: Sampler, accuracy: float, deadline: float) -> tuple[Array, bool]:
+def _integrated(sampler: Sampler, accuracy: float, deadline: Deadline) -> tuple[Array, bool]:
     """The states at the right end of every interval, and whether all of them are that accurate."""
     waiting = np.arange(sampler.count)
     ends = np.empty((sampler.count, sampler.point.states))
     steps = 1
-    while len(waiting) and steps <= MOST_STEPS and time.perf_counter() < deadline:
+    while len(waiting) and steps <= MOST_STEPS and not deadline.over:
         ends[waiting], gap = _advanced(sampler, waiting, steps)
         waiting = waiting[~((gap / sampler.state_sizes).max(axis=1) <= accuracy)]
         steps *= 2
@@ -139,14 +139,14 @@ def _rates(sampler: Sampler, intervals: Indices, states: Array, local: Array) ->
     return np.asarray(rates * sampler.width[intervals, None])
 
 
-def _stiff(sampler: Sampler, interval: int, accuracy: float, deadline: float) -> Array | None:
+def _stiff(sampler: Sampler, interval: int, accuracy: float, deadline: Deadline) -> Array | None:
     """One interval by an implicit method, or None where it gives up or the time is over."""
     from scipy.integrate import solve_ivp
 
     chosen = np.array([interval])
 
     def slope(local: float, state: Array) -> Array:
-        if time.perf_counter() > deadline:
+        if deadline.over:
             raise TimeoutError
         return np.asarray(_rates(sampler, chosen, state[None, :], np.array([local]))[0])
 

@@ -3,6 +3,7 @@
 import numpy as np
 import pytest
 
+from solvers.deadline import in_seconds
 from solvers.elastic import groups, least_violation
 from solvers.ipopt import Outcome
 from solvers.mesh import uniform
@@ -13,7 +14,7 @@ MESH = uniform(1, 5, 4)
 
 def least(problem, mesh=MESH):
     program = program_of(problem, mesh)
-    found = least_violation(program, start_of(problem, mesh) / program.scale, time_limit=20)
+    found = least_violation(program, start_of(problem, mesh) / program.scale, deadline=in_seconds(20))
     assert found.minimum.outcome is Outcome.SOLVED
     return program, found
 

@@ -5,6 +5,7 @@ import time
 import numpy as np
 import pytest
 
+from solvers.deadline import in_seconds
 from solvers.ipopt import Outcome, Start, minimise
 from solvers.mesh import uniform
 from tests.unit.solvers.problems import program_of, regulator, shape, start_of, stated
@@ -72,7 +73,7 @@ def test_the_time_limit_is_an_outcome():
         return False
 
     problem = shape(functional={"integrand": "(y'^2 - 1)^2 + sin(9*y)^2"}, endpoints=["y(0) = 0", "y(3) = 1"])
-    _, minimum = minimum_of(problem, time_limit=0.05, watch=slow)
+    _, minimum = minimum_of(problem, deadline=in_seconds(0.05), watch=slow)
     assert minimum.outcome is Outcome.TIME
 
 
