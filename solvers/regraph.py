@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from itertools import pairwise
 
 import numpy as np
 from numpy.polynomial import legendre
@@ -32,31 +31,41 @@ def regraph(
     fit = np.linalg.inv(legendre.legvander(nodes, DEGREE))
     between = np.linspace(-0.97, 0.97, 9)
     places = np.concatenate([nodes, between])
+    probing = legendre.legvander(between, DEGREE)
     size = float(np.abs(functions[leading](breaks)).max()) or 1.0
-    pieces: list[tuple[float, float, dict[str, Array]]] = []
-    waiting = [(float(a), float(b)) for a, b in pairwise(breaks)][::-1]
-    while waiting:
-        start, end = waiting.pop()
-        left, right = (float(value) for value in x(np.array([start, end])))
+    done: list[tuple[Array, Array, dict[str, Array]]] = []
+    starts, ends, count = breaks[:-1], breaks[1:], 0
+    while len(starts):
+        left, right = x(starts), x(ends)
         width = right - left
-        if width <= 1e-3 * FINEST * span:
-            continue
-        samples = _inverse(x, start, end, (left + right) / 2 + places * width / 2)
-        inside, probes = samples[: len(nodes)], samples[len(nodes) :]
-        modes = fit @ functions[leading](inside)
-        miss = np.abs(legendre.legval(between, modes) - functions[leading](probes)).max()
-        if miss > 1e-10 * size and width > FINEST * span and len(pieces) + len(waiting) < MOST_PIECES:
-            middle = (start + end) / 2
-            waiting += [(middle, end), (start, middle)]
-            continue
-        pieces.append((left, right, {name: fit @ function(inside) for name, function in functions.items()}))
-    edges = np.array([pieces[0][0], *(right for _, right, _ in pieces)])
-    return Curve(edges, {name: tuple(part[name] for _, _, part in pieces) for name in functions})
+        advancing = width > 1e-3 * FINEST * span
+        starts, ends, left, right, width = (values[advancing] for values in (starts, ends, left, right, width))
+        wanted = (left + right)[:, None] / 2 + places * width[:, None] / 2
+        samples = _inverse(x, np.repeat(starts, len(places)), np.repeat(ends, len(places)), wanted.ravel())
+        inside, probes = np.split(samples.reshape(wanted.shape), [len(nodes)], axis=1)
+        misses = np.abs(_at(functions[leading], inside) @ fit.T @ probing.T - _at(functions[leading], probes))
+        count += len(starts)
+        good = (misses.max(axis=1) <= 1e-10 * size) | (width <= FINEST * span) | (count >= MOST_PIECES)
+        modes = {name: _at(function, inside[good]) @ fit.T for name, function in functions.items()}
+        done.append((left[good], right[good], modes))
+        middles = (starts[~good] + ends[~good]) / 2
+        starts, ends = np.concatenate([starts[~good], middles]), np.concatenate([middles, ends[~good]])
+    order = np.argsort(np.concatenate([left for left, _, _ in done]))
+    edges = np.concatenate([right for _, right, _ in done])[order]
+    first = min(float(left.min(initial=np.inf)) for left, _, _ in done)
+    return Curve(
+        np.concatenate([[first], edges]),
+        {name: tuple(np.concatenate([modes[name] for _, _, modes in done])[order]) for name in functions},
+    )
 
 
-def _inverse(x: Callable[[Array], Array], start: float, end: float, wanted: Array) -> Array:
+def _at(function: Callable[[Array], Array], places: Array) -> Array:
+    """A function of a list at a table of places."""
+    return np.asarray(function(places.ravel()).reshape(places.shape))
+
+
+def _inverse(x: Callable[[Array], Array], low: Array, high: Array, wanted: Array) -> Array:
     """Parameters at which x has the wanted values: each bracket is cut into sixteen, six times, then a chord."""
-    low, high = np.full_like(wanted, start), np.full_like(wanted, end)
     steps = np.linspace(0.0, 1.0, 17)
     for _ in range(6):
         grid = low[:, None] + (high - low)[:, None] * steps
