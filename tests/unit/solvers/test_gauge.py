@@ -1,10 +1,9 @@
 """Integrands of linear growth in parametric form: the same integral for every parametrisation."""
 
-import time
-
 import numpy as np
 import pytest
 
+from solvers.deadline import in_seconds
 from solvers.formula.evaluate import REAL, evaluate
 from solvers.formula.nodes import At, Call, Name, walk
 from solvers.gauge import PARAMETER, SPEED, in_parametric_form
@@ -201,7 +200,7 @@ def test_both_gauges_give_the_same_value(name):
     found = []
     for squared in (True, False):
         gauged = in_parametric_form(problem, lambda: SIZES, squared)
-        pursuit = pursue(gauged.problem, None, time.perf_counter() + 30, meshes=4)
+        pursuit = pursue(gauged.problem, None, in_seconds(30), meshes=4)
         assert pursuit.solved
         found.append(np.sqrt(pursuit.paths[-1].value) if gauged.squared else pursuit.paths[-1].value)
     assert found[0] == pytest.approx(value, rel=tolerance)

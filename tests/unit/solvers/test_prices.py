@@ -2,18 +2,18 @@
 
 import json
 
-import numpy as np
 import pytest
 
 from service.assemble import assemble
 from service.spec import read
+from solvers.deadline import FOREVER
 from solvers.prices import prices
 from solvers.pursuit import pursue
 
 
 def path_of(document):
     problem = assemble(read(json.dumps({"format": 1, "title": "test", **document}).encode()))
-    pursuit = pursue(problem, None, np.inf, meshes=8)
+    pursuit = pursue(problem, None, FOREVER, meshes=8)
     assert pursuit.solved
     return pursuit.paths[-1]
 

@@ -7,6 +7,7 @@ import numpy as np
 import pytest
 
 from solvers.collocation import Family
+from solvers.deadline import in_seconds
 from solvers.lowering import lower
 from solvers.pursuit import FIRST_DEGREE, End, first_mesh, go_on, pursue
 from tests.unit.solvers.problems import compiled, regulator, shape, solved_on, stated
@@ -19,7 +20,7 @@ CORNER = {
 
 
 def far(seconds=30.0):
-    return time.perf_counter() + seconds
+    return in_seconds(seconds)
 
 
 def test_a_smooth_problem_converges_with_an_honest_error():

@@ -14,6 +14,7 @@ from scipy.sparse.linalg import spsolve
 from service.assemble import assemble
 from service.spec import read
 from solvers.checks.sampling import Sampler
+from solvers.deadline import FOREVER
 from solvers.functions import compile_problem
 from solvers.ipopt import Minimum, Outcome
 from solvers.layout import layout
@@ -31,7 +32,7 @@ def problem_of(document):
 
 @lru_cache
 def _solved(text):
-    pursuit = pursue(problem_of(json.loads(text)), None, np.inf, meshes=8)
+    pursuit = pursue(problem_of(json.loads(text)), None, FOREVER, meshes=8)
     assert pursuit.solved, pursuit.end
     return pursuit
 

@@ -1,11 +1,10 @@
 """All checks together: their order, their manners, and what becomes of one that breaks."""
 
-import time
-
 import pytest
 
 from solvers import checks
 from solvers.checks import curvature, stationarity
+from solvers.deadline import in_seconds
 from solvers.solution import Status
 
 LINE = {
@@ -42,7 +41,7 @@ def test_without_time_nothing_passes(solved):
 
 
 def test_the_second_variation_gives_up_when_its_time_is_over(solved, examine):
-    check = examine(curvature.check, solved(LINE), time.perf_counter())
+    check = examine(curvature.check, solved(LINE), in_seconds(0))
     assert check.status is Status.NOT_APPLICABLE
     assert "in the time there was" in check.sentence
 

@@ -7,6 +7,7 @@ import pytest
 
 from solvers.checks import stationarity
 from solvers.checks.sampling import Sampler
+from solvers.deadline import FOREVER
 from solvers.gauge import in_parametric_form
 from solvers.pursuit import pursue
 from solvers.solution import Status
@@ -125,7 +126,7 @@ def test_a_costate_that_jumps_without_a_cause_fails(solved, examine):
 def test_an_infinite_costate_at_a_fixed_end_is_treated_fairly(examine):
     """And yet a costate that is wrong elsewhere, or a curve that is not the cycloid, fails there too."""
     gauged = in_parametric_form(problem_of(QUICKEST), lambda: {"x": 1.0, "y": 1.0}, True)
-    path = pursue(gauged.problem, None, np.inf).paths[-1]
+    path = pursue(gauged.problem, None, FOREVER).paths[-1]
     assert np.sqrt(path.value) == pytest.approx(0.5828954631547426, rel=1e-6)
     assert examine(stationarity.check, path).status is Status.PASSED
     later = np.where(path.points[:, None] > 0.5, 1.02, 1.0)

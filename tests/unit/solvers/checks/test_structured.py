@@ -8,12 +8,12 @@ problem that was asked.
 from dataclasses import replace
 from functools import lru_cache
 
-import numpy as np
 import pytest
 
 from solvers import checks
 from solvers.checks.redundancy import unambiguous
 from solvers.collocation import Family
+from solvers.deadline import FOREVER
 from solvers.formula.nodes import Name
 from solvers.mesh import Mesh, interval
 from solvers.problem import Calm, Held, Parameter, Place, Touch
@@ -126,7 +126,7 @@ WRONG = {
 @lru_cache
 def solved(name):
     problem = {**{k: p for k, (p, _) in RIGHT.items()}, **WRONG}[name]
-    pursuit = pursue(problem, None, np.inf, meshes=4, mesh=mesh_of(len(problem.places) - 1))
+    pursuit = pursue(problem, None, FOREVER, meshes=4, mesh=mesh_of(len(problem.places) - 1))
     assert pursuit.solved, pursuit.end
     return pursuit.paths[-1]
 
