@@ -39,6 +39,8 @@ CURVE_ROOM = 100.0
 """How much more than the tolerance the curve may still have moved: a switch that hardly matters moves freely."""
 FEW_ITERATIONS = 100
 """Iterations within which a solve from a related trajectory must be through: it starts near its end."""
+AIM = 0.1
+"""The local error that a new mesh is made for, relative to the tolerance."""
 LEAST_GAIN = 0.05
 """How much of the last change of the value counts as its error at the least, however much the mesh has improved."""
 FLOOR = 1e-9
@@ -133,7 +135,7 @@ def _go_on(pursuit: Pursuit, minimise_: _Minimiser, meshes: int) -> None:
     pursuit.end = End.SETTLED
     for _ in range(meshes):
         path, found = pursuit.paths[-1], pursuit.estimates[-1]
-        better = refinement.refine(path, found, 0.3 * options.tolerance)
+        better = refinement.refine(path, found, AIM * options.tolerance)
         if better == path.program.mesh:
             better = refinement.finer(better)
         mesh = _limited(better, path.program.mesh, found, options.points)
