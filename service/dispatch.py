@@ -91,10 +91,7 @@ class Dispatcher:
             if self._owner is not None and not self._backlog and self._room():
                 lease = time.time() + self._settings.lease_seconds
                 claimed = replace(run, state=State.SOLVING, attempt=1, owner=self._owner.name, lease=lease)
-                accepted = self._store.accept(claimed, document)
-                if accepted.id == run.id:
-                    self._hand_over(accepted, document)
-                return accepted
+                return self._begin(claimed, document)
             accepted = self._store.accept(run, document, queue=self._settings.queue)
             if accepted.id == run.id:
                 self._progress.publish(run.id, {"kind": "state", "state": State.WAITING.value})
@@ -158,7 +155,10 @@ class Dispatcher:
     def ended(self, job: Job, outcome: Outcome) -> None:
         """Write what came of an attempt, and bring the next one."""
         with self._feeding:
-            run = self._held.pop(job.id)
+            run = self._held.pop(job.id, None)
+        if run is None:  # it could not be kept
+            self._feed()
+            return
         if outcome.ending in (Ending.RAISED, Ending.DIED, Ending.UNSTARTED):
             _log.warning("run %s, attempt %d: %s\n%s", run.id, run.attempt, outcome.reason, outcome.detail)
         self._write(run, partial(self._settle, run, outcome))
@@ -166,6 +166,22 @@ class Dispatcher:
             self._feed()
 
     # Inside
+
+    def _begin(self, run: Run, document: str) -> Run:
+        """Accept a claimed run.  Its worker starts while the disk is still busy; nobody is told before that is done."""
+        if run.key is not None:  # maybe an earlier run is meant: look first
+            accepted = self._store.accept(run, document)
+            if accepted.id == run.id:
+                self._hand_over(run, document)
+            return accepted
+        self._hand_over(run, document)
+        try:
+            return self._store.accept(run, document)
+        except BaseException:
+            del self._held[run.id]
+            self._engine.cancel(run.id)
+            self._end(run.id, State.STOPPED)
+            raise
 
     def _settle(self, run: Run, outcome: Outcome) -> State | None:
         """Write an outcome; the state that it leads to.  Raises StoreError."""

@@ -10,20 +10,21 @@ import math
 import time
 import traceback
 from collections.abc import Callable, Mapping
-from concurrent.futures import Future, ThreadPoolExecutor
+from concurrent.futures import ThreadPoolExecutor
 from dataclasses import replace
+from functools import cache
 from typing import Any
 
 from service.archive import result_document
 from service.assemble import assemble
 from service.reading import read_back, with_necessary
 from service.run import State
-from service.spec import read
+from service.spec import Document, read
+from service.thinning import Report, thinned
 from solvers.problem import Problem
 from solvers.solution import Progress
 from solvers.solve import solve as solve_problem
 
-Report = Callable[[dict[str, Any]], None]
 Stop = Callable[[], bool]
 
 _FIGURES = ("verdict", "value", "value_error", "value_unit")
@@ -40,31 +41,33 @@ def perform(
     began = time.perf_counter()
     document = read(document_text.encode())
     problem = assemble(document)
-    reading = read_back(problem, document)
     limit = min(problem.options.time_limit, longest)
     problem = replace(problem, options=replace(problem.options, time_limit=limit))
     ready = time.perf_counter()
 
-    told = False
-
-    def watch(progress: Progress) -> bool:
-        nonlocal told
-        report(progress_event(progress, problem))
-        told = told or stop()
-        return told
-
-    # The solver leaves Python for most of its time: the symbols are found beside it and delay nobody.
+    # The reading is written while the optimiser computes, which leaves Python for most of its time; begun earlier, it
+    # would only delay what is done in Python before.
     with ThreadPoolExecutor(1) as beside:
-        necessary = beside.submit(with_necessary, reading, problem)
+        reading = cache(lambda: beside.submit(_reading, document, problem))
+        told = False
+
+        def watch(progress: Progress) -> bool:
+            nonlocal told
+            reading()
+            report(progress_event(progress, problem))
+            told = told or stop()
+            return told
+
         solution = solve_problem(problem, watch)
+        understood = reading().result()
     state = State.STOPPED if told else State.FINISHED
     times = {"read": ready - began}
-    return result_document(document, problem, solution, _complete(necessary, reading), times, id=id, state=state.value)
+    return result_document(document, problem, solution, understood, times, id=id, state=state.value)
 
 
 def solve(head: Mapping[str, Any], body: bytes, report: Report, stop: Stop) -> tuple[Mapping[str, Any], bytes]:
     """`perform` as a slot's child calls it: the figures for the list of runs, and the result as JSON text."""
-    result = perform(body.decode(), report, stop, id=head["id"], longest=head["time_limit"])
+    result = perform(body.decode(), thinned(report), stop, id=head["id"], longest=head["time_limit"])
     figures = {name: result[name] for name in _FIGURES}
     text = json.dumps(result, ensure_ascii=False, allow_nan=False, separators=(",", ":"))
     stopped = result["state"] == State.STOPPED.value
@@ -92,10 +95,11 @@ def progress_event(progress: Progress, problem: Problem) -> dict[str, Any]:
     return event
 
 
-def _complete(necessary: Future[dict[str, Any]], reading: dict[str, Any]) -> dict[str, Any]:
-    """The reading with its necessary conditions; they are not worth losing a solution."""
+def _reading(document: Document, problem: Problem) -> dict[str, Any]:
+    """How the document was understood, with its necessary conditions; these are not worth losing a solution."""
+    reading = read_back(problem, document)
     try:
-        return necessary.result()
+        return with_necessary(reading, problem)
     except Exception as error:
         traceback.print_exception(error)
         note = f"The necessary conditions are left out because of an error in their derivation ({error!r})."

@@ -15,7 +15,7 @@ from service.run import Run
 from service.services import Services
 
 
-def _services(request: Request) -> Services:
+async def _services(request: Request) -> Services:  # not a plain function: that would be called in a thread
     services: Services = request.app.state.services
     return services
 

@@ -5,6 +5,7 @@ import json
 import os
 import signal
 import threading
+import time
 
 import pytest
 import sqlalchemy as sql
@@ -278,3 +279,40 @@ def test_an_outcome_waits_in_memory_while_the_disk_is_full(start, submit, ended,
     assert len(json.loads(store.result(run.id))["answer"]) == 400_000
     assert not dispatcher._unwritten
     assert sum(store.counts().values()) == 1
+
+
+def test_a_run_that_cannot_be_kept_is_not_solved_either(start, submit, ended, until, monkeypatch, tmp_path):
+    dispatcher, store = start()
+    mark = tmp_path / "mark"
+
+    def full(*args, **options):
+        until(mark.exists)  # the worker works on it by now
+        raise StoreFullError("no room")
+
+    with monkeypatch.context() as patched:
+        patched.setattr(store, "accept", full)
+        with pytest.raises(StoreFullError):
+            submit(dispatcher, "count", steps=100_000, mark=str(mark))
+    assert sum(store.counts().values()) == 0
+    assert ended(store, submit(dispatcher)).state is State.FINISHED
+    assert until(lambda: not dispatcher._held)
+
+
+def test_nobody_is_told_of_a_run_before_it_is_on_disk(start, submit, ended, monkeypatch):
+    dispatcher, store = start()
+    steps = []
+    accept, finish = store.accept, store.finish
+
+    def slow(run, document, **options):
+        time.sleep(0.5)  # the worker is done long before
+        kept = accept(run, document, **options)
+        steps.append("kept")
+        return kept
+
+    monkeypatch.setattr(store, "accept", slow)
+    monkeypatch.setattr(store, "finish", lambda *args, **options: steps.append("finished") or finish(*args, **options))
+    run = submit(dispatcher)
+    assert steps[0] == "kept"
+    assert store.get(run.id) is not None
+    assert ended(store, run).state is State.FINISHED
+    assert steps == ["kept", "finished"]
