@@ -52,6 +52,7 @@ def serve(host: str | None, port: int | None, data: Path | None, workers: int | 
     What is not given is read from environment variables (CURVEWRIGHT_PORT and so on).
     """
     gc.disable()  # a fifth of the start is the collector looking through what stays anyway; `serve.run` enables it
+    os.environ.setdefault("PYDANTIC_DISABLE_PLUGINS", "__all__")  # there are none, and looking for them takes a while
     from pydantic import ValidationError
 
     from service.run import StoreError
@@ -60,7 +61,7 @@ def serve(host: str | None, port: int | None, data: Path | None, workers: int | 
 
     given = {"host": host, "port": port, "data": data, "workers": workers, "open": open_}
     try:
-        settings = Settings(**{name: value for name, value in given.items() if value is not None})  # type: ignore[arg-type]
+        settings = Settings(**{name: value for name, value in given.items() if value is not None})
     except ValidationError as error:
         problems = "; ".join(f"{'.'.join(map(str, item['loc']))}: {item['msg']}" for item in error.errors())
         raise click.UsageError(f"The settings do not hold together: {problems}") from None

@@ -1,6 +1,6 @@
 """Runs the application in this process until a signal ends it.
 
-The workers are started first: they load the solver while this process loads the database and the framework.
+A worker is started first: it loads the solver while this process loads the database and the framework.
 """
 
 from __future__ import annotations
@@ -8,14 +8,10 @@ from __future__ import annotations
 import gc
 import socket
 from collections.abc import Callable
-from typing import TYPE_CHECKING
 
 from service.engine.records import Engine
 from service.settings import Settings
 from service.workers import workers
-
-if TYPE_CHECKING:
-    from service.services import Services
 
 SHUTDOWN_SECONDS = 3
 KEEP_ALIVE_SECONDS = 30  # with a short one a busy machine closes connections that are about to be used
@@ -40,19 +36,12 @@ def run(settings: Settings, announce: Callable[[str], None]) -> None:
 
 
 def _serve(listener: socket.socket, settings: Settings, engine: Engine, announce: Callable[[str], None]) -> None:
-    from service.services import Services
-
-    services = Services.start(settings, engine=engine)
-    try:
-        _answer(listener, services, announce)
-    finally:
-        services.close()
-
-
-def _answer(listener: socket.socket, services: Services, announce: Callable[[str], None]) -> None:
+    # Loaded before anything begins: further workers would take the processor away from it.
     import uvicorn
 
+    from service import later
     from service.app import create_app
+    from service.services import Services
 
     class Server(uvicorn.Server):
         """Tells the address once requests are answered."""
@@ -61,20 +50,25 @@ def _answer(listener: socket.socket, services: Services, announce: Callable[[str
             await super().startup(sockets)
             if self.started:
                 announce(_address(listener))
+                later.load()
 
-    app = create_app(services.settings, services)
-    gc.freeze()  # what is loaded now stays
-    gc.enable()
-    config = uvicorn.Config(
-        app,
-        access_log=False,
-        server_header=False,
-        lifespan="on",
-        log_level="warning",
-        timeout_keep_alive=KEEP_ALIVE_SECONDS,
-        timeout_graceful_shutdown=SHUTDOWN_SECONDS,
-    )
-    Server(config).run(sockets=[listener])
+    services = Services.start(settings, engine=engine)
+    try:
+        app = create_app(settings, services)
+        gc.freeze()  # what is loaded now stays
+        gc.enable()
+        config = uvicorn.Config(
+            app,
+            access_log=False,
+            server_header=False,
+            lifespan="on",
+            log_level="warning",
+            timeout_keep_alive=KEEP_ALIVE_SECONDS,
+            timeout_graceful_shutdown=SHUTDOWN_SECONDS,
+        )
+        Server(config).run(sockets=[listener])
+    finally:
+        services.close()
 
 
 def _listener(settings: Settings) -> socket.socket:

@@ -7,9 +7,11 @@ from __future__ import annotations
 
 import os
 from pathlib import Path
+from typing import Any
 
-from pydantic import Field
-from pydantic_settings import BaseSettings, SettingsConfigDict
+from pydantic import BaseModel, ConfigDict, Field, model_validator
+
+PREFIX = "CURVEWRIGHT_"
 
 
 def _data_directory() -> Path:
@@ -21,10 +23,10 @@ def _usable_cores() -> int:
     return max(1, len(os.sched_getaffinity(0)))
 
 
-class Settings(BaseSettings):
+class Settings(BaseModel):
     """Where to keep data, where to listen, how much a run may take."""
 
-    model_config = SettingsConfigDict(env_prefix="CURVEWRIGHT_", frozen=True, extra="forbid")
+    model_config = ConfigDict(frozen=True, extra="forbid")
 
     data: Path = Field(default_factory=_data_directory, description="directory of the database; made when missing")
     database: str = Field("", description="database address; empty: SQLite in the data directory")
@@ -46,6 +48,12 @@ class Settings(BaseSettings):
     understand_seconds: float = Field(5.0, gt=0, description="most seconds for the necessary conditions in symbols")
     attempts: int = Field(3, ge=1, description="a run whose worker died this often is failed")
     lease_seconds: float = Field(30.0, gt=0, description="a claim not renewed for so long is open to others")
+
+    @model_validator(mode="before")
+    @classmethod
+    def _over_the_environment(cls, given: dict[str, Any]) -> dict[str, Any]:
+        environment = {name: os.environ.get(PREFIX + name.upper()) for name in cls.model_fields}
+        return {name: text for name, text in environment.items() if text is not None} | given
 
     @property
     def database_url(self) -> str:

@@ -12,11 +12,8 @@ from functools import cache
 from pathlib import Path
 from typing import Any
 
-import numpy as np
-
 from service import samples
 from web.thumbnails import Sketch
-from web.trajectory import read_trajectory
 
 _STORED = Path(__file__).parent / "samples" / "sketches" / "curves.json"
 POINTS = 61
@@ -36,6 +33,10 @@ def sketches() -> Mapping[str, Sketch]:
 
 def drawn(name: str, result: Mapping[str, Any]) -> list[list[list[float]]]:
     """The lines of a sample's picture from its result document: points of the first unknown, then of others."""
+    import numpy as np  # not for a server, which only reads what is stored
+
+    from web.trajectory import read_trajectory
+
     trajectory = read_trajectory(result)
     assert trajectory is not None, f"sample {name} has no curve"
     places = np.linspace(trajectory.start, trajectory.end, POINTS)

@@ -138,6 +138,7 @@ def main() -> None:
     parser.add_argument("--job", required=True)
     parser.add_argument("--address-space", type=int, default=0)
     given = parser.parse_args()
+    gc.disable()  # what is loaded now stays: there is nothing to collect
     _die_with(given.parent)
     signal.signal(signal.SIGINT, signal.SIG_IGN)  # Ctrl-C in a terminal is for the parent
     line = _Line(given.socket)
@@ -145,8 +146,8 @@ def main() -> None:
     function = _load(given.job)
     sys.setswitchinterval(_SWITCH_SECONDS)
     _protect_the_machine(given.address_space)
-    gc.collect()
     gc.freeze()
+    gc.enable()
     line.send({"kind": "ready"})
     _serve(line, function)
 

@@ -35,15 +35,13 @@ class LocalEngine:
         ]
 
     def prepare(self) -> None:
-        """Start the threads; each starts its child."""
-        for thread in self._threads:
-            if thread.ident is None:
-                thread.start()
+        """Start the first child.  The others would only slow down what is loaded beside it; they come with `start`."""
+        self._start_threads(1)
 
     def start(self, sink: Sink) -> None:
         """Take jobs from now on; what happens to them goes to `sink`."""
         self._sink = sink
-        self.prepare()
+        self._start_threads(len(self._threads))
 
     def capacity(self) -> Capacity:
         """How much room there is now."""
@@ -93,6 +91,12 @@ class LocalEngine:
                 slot.close()
             else:
                 thread.join()
+
+    def _start_threads(self, count: int) -> None:
+        """Each starts its child."""
+        for thread in self._threads[:count]:
+            if thread.ident is None:
+                thread.start()
 
     def _work(self, slot: Slot) -> None:
         """The life of one thread."""

@@ -69,7 +69,7 @@ class Engine(Protocol):
     """Solves jobs somewhere.  Holds nothing that must survive: the truth is in the store."""
 
     def prepare(self) -> None:
-        """Begin to start children and do not wait until they are ready; for who has other things to load meanwhile."""
+        """Begin to start a child and do not wait until it is ready; for who has other things to load meanwhile."""
 
     def start(self, sink: Sink) -> None:
         """Begin to take jobs and tell `sink` about them; prepares what is not prepared yet."""

@@ -30,7 +30,6 @@ from web.form.draft import Draft, draft_from_post, draft_from_text, empty_draft
 from web.pages.compose import compose_page
 from web.pages.home import Sample, home_page
 from web.pages.progress import progress_page
-from web.pages.result import result_page
 from web.pages.runs import runs_page
 from web.render import render
 
@@ -143,6 +142,8 @@ def show_run(request: Request, run: TheRun, services: TheServices) -> Response:
     if not run.state.ended:
         document = services.store.document(run.id) or "{}"
         return HTMLResponse(render(progress_page(resource(run), json.loads(document))))
+    from web.pages.result import result_page  # see `service.later`
+
     page = result_page(
         shown_result(run, services.store),
         base_url=_base(request),

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import json
-from typing import Annotated, Any, Literal
+from typing import TYPE_CHECKING, Annotated, Any, Literal
 
 from fastapi import APIRouter, Query
 from pydantic import BaseModel, ConfigDict, Field
@@ -19,7 +19,10 @@ from service.routes.needs import TheRun, TheServices
 from service.run import Run
 from service.services import Services
 from web import links
-from web.tables import FILE_FORMATS, Table, TableError, table, to_csvw
+from web.media_types import TABLES
+
+if TYPE_CHECKING:  # else loaded with the first table, or by `service.later`
+    from web.tables import Table
 
 CSVW_JSON = "application/csvm+json"
 
@@ -40,7 +43,7 @@ class Choice(BaseModel):
 TheChoice = Annotated[Choice, Query()]
 
 router = APIRouter(prefix=links.API_RUNS, tags=["tables"], default_response_class=Response)
-_MEDIA_TYPES = {suffix: file.media_type.partition(";")[0] for suffix, file in FILE_FORMATS.items()}
+_MEDIA_TYPES = {suffix: media_type.partition(";")[0] for suffix, media_type in TABLES.items()}
 _ANSWERS: dict[int | str, dict[str, Any]] = {
     200: {"description": "The table", "content": {media_type: {} for media_type in _MEDIA_TYPES.values()}},
     **failures("not-found", "unfinished", "no-curve", "parameters"),
@@ -58,6 +61,8 @@ _ANSWERS: dict[int | str, dict[str, Any]] = {
 )
 def read_metadata(request: Request, run: TheRun, services: TheServices, choice: TheChoice) -> Response:
     """CSV on the Web: names, units and meanings of the columns of `table.csv` with the same query."""
+    from web.tables import to_csvw
+
     described = to_csvw(_table(run, services, choice), f"table.csv{_query(request)}")
     return conditional.answer(request, json.dumps(described, ensure_ascii=False, allow_nan=False).encode(), CSVW_JSON)
 
@@ -96,6 +101,8 @@ def negotiate_table(request: Request, run: TheRun, services: TheServices, choice
 
 
 def _table(run: Run, services: Services, choice: Choice) -> Table:
+    from web.tables import TableError, table
+
     result = result_of(run, services.store)
     if not result["curve"]:
         raise Fault("no-curve", "This run ended without a curve; its result document says why.")
@@ -110,6 +117,8 @@ def _table(run: Run, services: Services, choice: Choice) -> Table:
 
 
 def _answer(request: Request, run: Run, made: Table, suffix: str) -> Response:
+    from web.tables import FILE_FORMATS
+
     headers = {"content-disposition": f'attachment; filename="curvewright-{run.id[:8]}.{suffix}"'}
     if suffix == "csv":
         address = f"{links.api_run(run.id)}/table.csv-metadata.json{_query(request)}"

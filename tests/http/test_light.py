@@ -11,7 +11,7 @@ import httpx2
 from tests.http.serving import LINE, serving
 from web import links
 
-HEAVY = ("casadi", "scipy", "pint", "plotly", "alembic", "xlsxwriter", "ziamath", "fontTools")
+HEAVY = ("casadi", "scipy", "numpy", "pint", "plotly", "alembic", "xlsxwriter", "ziamath", "fontTools")
 MOST_MEGABYTES = 150
 MOST_OF_A_WORKER = 100
 

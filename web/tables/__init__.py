@@ -3,6 +3,7 @@
 from collections.abc import Callable
 from dataclasses import dataclass
 
+from web.media_types import TABLES
 from web.tables.choice import Choice, read_choice
 from web.tables.columns import Column
 from web.tables.csv import to_csv, to_csvw, to_json
@@ -40,10 +41,9 @@ def _to_xlsx(table: Table) -> bytes:
     return to_xlsx(table)
 
 
+_WRITERS = {"csv": ("CSV", to_csv), "json": ("JSON", to_json), "xlsx": ("XLSX", _to_xlsx), "npz": ("NPZ", to_npz)}
+
 FILE_FORMATS: dict[str, FileFormat] = {
-    "csv": FileFormat("CSV", "text/csv; charset=utf-8; header=present", to_csv),
-    "json": FileFormat("JSON", "application/json", to_json),
-    "xlsx": FileFormat("XLSX", "application/vnd.openxmlformats-officedocument.spreadsheetml.sheet", _to_xlsx),
-    "npz": FileFormat("NPZ", "application/x-npz", to_npz),
+    suffix: FileFormat(name, TABLES[suffix], write) for suffix, (name, write) in _WRITERS.items()
 }
 """By file suffix."""

@@ -36,6 +36,21 @@ def test_a_relative_directory_means_the_current_one(monkeypatch, tmp_path):
     assert Settings(data=Path("here")).database_url == f"sqlite:///{tmp_path}/here/curvewright.sqlite3"
 
 
+def test_the_environment_is_text_and_is_read_as_what_is_meant(monkeypatch):
+    for name, text in {"OPEN": "true", "WAIT_SECONDS": "2.5", "DATA": "/somewhere", "HOSTS": ""}.items():
+        monkeypatch.setenv(f"CURVEWRIGHT_{name}", text)
+    settings = Settings()
+    assert (settings.open, settings.wait_seconds, settings.data, settings.hosts) == (True, 2.5, Path("/somewhere"), "")
+    monkeypatch.setenv("CURVEWRIGHT_PORT", "no number")
+    with pytest.raises(ValidationError, match="port"):
+        Settings()
+
+
+def test_a_setting_that_is_none_is_refused_where_it_is_given():
+    with pytest.raises(ValidationError, match="colour"):
+        Settings(colour="green")
+
+
 @pytest.mark.parametrize(("name", "value"), [("port", 70000), ("workers", 0), ("memory_mb", 1), ("attempts", 0)])
 def test_nonsense_is_refused(name, value):
     with pytest.raises(ValidationError, match=name):

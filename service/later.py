@@ -1,0 +1,20 @@
+"""What figures and tables need: a server loads it once it has answered for a moment, so that it is ready sooner.
+
+A request that needs it earlier loads it, and waits so long.
+"""
+
+from __future__ import annotations
+
+from importlib import import_module
+from threading import Timer
+
+MODULES = ("web.pages.result", "web.tables")
+SECONDS = 1.0
+"""After the start; at once it would be in the way of the first answers."""
+
+
+def load() -> None:
+    """Begin to load in a while, and do not wait."""
+    timer = Timer(SECONDS, lambda: [import_module(name) for name in MODULES])
+    timer.daemon = True
+    timer.start()
