@@ -4,11 +4,9 @@ from __future__ import annotations
 
 from hashlib import sha256
 
-from service.assemble import assemble
 from service.errors import Fault
 from service.run import Run, new_run
 from service.services import Services
-from service.spec import read
 
 LONGEST_KEY = 200
 
@@ -18,6 +16,9 @@ def accept(services: Services, body: bytes, key: str | None = None) -> tuple[Run
 
     Raises `Refused` for the document, `IdempotencyError`, `QueueFullError` and `StoreError` where it cannot be kept.
     """
+    from service.assemble import assemble  # see `service.later`
+    from service.spec import read
+
     document = read(body)
     assemble(document)
     services.check_room()

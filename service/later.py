@@ -1,4 +1,4 @@
-"""What figures and tables need: a server loads it once it has answered for a moment, so that it is ready sooner.
+"""What documents, figures and tables need: a server loads it once it has answered for a moment, so it is ready sooner.
 
 A request that needs it earlier loads it, and waits so long.
 """
@@ -8,7 +8,7 @@ from __future__ import annotations
 from importlib import import_module
 from threading import Timer
 
-MODULES = ("web.pages.result", "web.tables")
+MODULES = ("service.reading", "web.pages.result", "web.tables")
 SECONDS = 1.0
 """After the start; at once it would be in the way of the first answers."""
 

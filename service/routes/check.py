@@ -10,13 +10,10 @@ from pydantic import BaseModel, ConfigDict, Field
 from starlette.concurrency import run_in_threadpool
 from starlette.responses import JSONResponse, Response
 
-from service.assemble import assemble
 from service.negotiation import JSON
 from service.openapi import PROBLEM_BODY, REFUSALS, failures, shape
-from service.reading import read_back
 from service.routes.needs import JsonBody, TheServices, accepts
 from service.services import Services
-from service.spec import read
 from web import links
 
 router = APIRouter(tags=["check"])
@@ -59,5 +56,9 @@ async def reading_of(body: bytes, services: Services, *, necessary: bool) -> dic
 
 
 def _reading(body: bytes) -> dict[str, Any]:
+    from service.assemble import assemble  # see `service.later`
+    from service.reading import read_back
+    from service.spec import read
+
     document = read(body)
     return read_back(assemble(document), document)

@@ -4,15 +4,16 @@ from __future__ import annotations
 
 from markupsafe import Markup
 
-from solvers.formula.errors import FormulaError
-from solvers.formula.mathml import mathml
-from solvers.formula.parser import parse_either
-
 
 def understood(formula: str) -> Markup:
     """MathML of a formula; empty where it cannot be read (the check of the document then says why)."""
     if not formula.strip():
         return Markup("")
+    # Here, so that a server is ready before it has loaded what reads formulas.
+    from solvers.formula.errors import FormulaError
+    from solvers.formula.mathml import mathml
+    from solvers.formula.parser import parse_either
+
     try:
         return Markup(mathml(parse_either(formula)))  # our own printer; it escapes every name
     except FormulaError:
