@@ -42,7 +42,7 @@ class Guess:
 def guesses(compiled: Compiled, mesh: Mesh, where: Layout) -> list[Guess]:
     """Guesses on a mesh, best first."""
     problem = compiled.lowered.problem
-    parameters = np.array([_parameter(p) for p in problem.parameters])
+    parameters = np.array([first_value(p) for p in problem.parameters])
     places = _places(problem, constants_of(compiled), parameters, where)
     for index, place in zip(where.places, places, strict=True):
         parameters[where.parameters == index] = place
@@ -64,7 +64,7 @@ def _guess(compiled: Compiled, mesh: Mesh, where: Layout, places: Array, paramet
     return Guess(z, _violation(compiled, where, z, outputs), bent=bend.size != 0)
 
 
-def _parameter(parameter: Parameter) -> float:
+def first_value(parameter: Parameter) -> float:
     """A value inside the bounds, or the user's."""
     lower, upper = parameter.lower, parameter.upper
     if parameter.guess is not None:

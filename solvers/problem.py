@@ -65,6 +65,7 @@ class Unknown:
     upper: float = float("inf")
     guess: Node | tuple[tuple[float, float], ...] | None = None
     unit: Unit = PLAIN
+    sketched: bool = False  # the guess is none of the user's: it may be bent like a line
 
     @property
     def role(self) -> Role:
@@ -116,6 +117,33 @@ class Place:
 
     tree: Node
     label: str
+
+
+@dataclass(frozen=True, slots=True)
+class Arc:
+    """A stretch between two places (by their index) with laws of its own; what holds everywhere is among them.
+
+    `unknowns` are those that occur on it, with their orders there.  `integrals` hold integrals over this arc only.
+    """
+
+    name: str
+    first: int
+    last: int
+    unknowns: tuple[Unknown, ...]
+    integrand: Node | None = None
+    where: tuple[tuple[str, Node], ...] = ()
+    dynamics: tuple[Equation, ...] = ()
+    constraints: tuple[Condition, ...] = ()
+    integrals: tuple[Condition, ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
+class Jump:
+    """A derivative of an unknown that need not be continuous at a junction (a place by its index)."""
+
+    name: str
+    order: int
+    place: int
 
 
 @dataclass(frozen=True, slots=True)
@@ -175,7 +203,12 @@ class Options:
 
 @dataclass(frozen=True, slots=True)
 class Problem:
-    """Everything that the solver has to know."""
+    """Everything that the solver has to know.
+
+    With `arcs`, which follow each other from the first place to the last, the laws along the curve are theirs:
+    `integrand`, `where`, `dynamics` and `constraints` are empty then, `unknowns` has every name with its highest order,
+    and integrals in `integrals` and `endpoint` run over all arcs.
+    """
 
     independent: str
     places: tuple[Place, ...]  # in order; the first is `from`, the last is `to`
@@ -191,6 +224,8 @@ class Problem:
     endpoints: tuple[Condition, ...] = ()  # bodies use `At`, parameters, constants
     constraints: tuple[Condition, ...] = ()  # pointwise: hold everywhere
     integrals: tuple[Condition, ...] = ()  # bodies hold `Call("integral", ...)`, may hold `At` and parameters too
+    arcs: tuple[Arc, ...] = ()
+    jumps: frozenset[Jump] = frozenset()
     held: tuple[Held, ...] = ()  # found by the solver, never given by the user
     touches: tuple[Touch, ...] = ()  # the same
     calm: tuple[Calm, ...] = ()  # the same
@@ -198,3 +233,9 @@ class Problem:
     options: Options = field(default_factory=Options)
     independent_unit: Unit = PLAIN
     value_unit: Unit = PLAIN
+
+    @property
+    def conditions(self) -> tuple[Condition, ...]:
+        """All conditions that the user stated, those of the arcs included."""
+        of_arcs = (condition for arc in self.arcs for condition in (*arc.constraints, *arc.integrals))
+        return (*self.endpoints, *self.constraints, *self.integrals, *of_arcs)

@@ -53,13 +53,13 @@ def sketch(compiled: Compiled, mesh: Mesh, where: Layout, places: Array, paramet
     numbers = constants_of(compiled) | {p.name: float(v) for p, v in zip(problem.parameters, parameters, strict=True)}
     for turn, unknown in enumerate(problem.unknowns):
         if unknown.guess is not None:
-            rows = [_given(unknown.guess, grid, numbers, problem.independent)]
+            rows = [given_values(unknown.guess, grid, numbers, problem.independent)]
             for _ in range(unknown.order):
                 rows.append(np.gradient(rows[-1], grid))
         else:
-            rows = _lines(unknown, grid, places, known, _between(*bounds[unknown.name, 0]))
-            if bend.size and unknown.order:
-                _add(bend, rows, (grid - places[0]) / (places[-1] - places[0]), places[-1] - places[0], turn)
+            rows = _lines(unknown, grid, places, known, between(*bounds[unknown.name, 0]))
+        if bend.size and unknown.order and (unknown.guess is None or unknown.sketched):
+            _add(bend, rows, (grid - places[0]) / (places[-1] - places[0]), places[-1] - places[0], turn)
         modes = problem.start.modes.get(unknown.name, ())
         if modes:
             held = {index for index, _ in known.get((unknown.name, 0), ())}
@@ -100,7 +100,7 @@ def _known_values(compiled: Compiled) -> dict[Quantity, list[tuple[int, float]]]
     return known
 
 
-def _between(lower: float, upper: float) -> float:
+def between(lower: float, upper: float) -> float:
     """A value inside the bounds of an unknown about which nothing else is known."""
     if np.isfinite(lower) and np.isfinite(upper):
         return (lower + upper) / 2
@@ -166,7 +166,7 @@ def _vary(
             rows[order] = row + amplitude * size * (waves / span) ** order * wave
 
 
-def _given(
+def given_values(
     guess: Node | tuple[tuple[float, float], ...], grid: Array, numbers: dict[str, float], independent: str
 ) -> Array:
     """The user's guess on a grid."""

@@ -113,6 +113,23 @@ class Progress:
     start: int = 1  # which of several starts
 
 
+@dataclass(frozen=True, slots=True)
+class SwitchPlace:
+    """A place at which controls jump or a limit begins or ceases to bind, and the unknowns that it is about."""
+
+    place: float
+    of: frozenset[str]
+
+
+@dataclass(frozen=True, slots=True)
+class ArcCurve:
+    """The curve and the costates of one of several arcs."""
+
+    name: str
+    curve: Curve
+    costates: Curve | None = None
+
+
 Watch = Callable[[Progress], bool]
 """Takes each sign of life; True asks the solver to stop at the next iteration."""
 
@@ -122,7 +139,8 @@ class Solution:
     """The outcome of `solvers.solve.solve`.
 
     `curve` holds every unknown with its derivatives up to its order; `costates` has one function per state
-    (named like the state) and one per pointwise condition that binds somewhere (named by its label).
+    (named like the state) and one per pointwise condition that binds somewhere (named by its label).  A problem of
+    arcs has both in `arcs` instead, in their order, without those that turned out to have no length.
     """
 
     verdict: Verdict | None
@@ -132,6 +150,8 @@ class Solution:
     curve: Curve | None = None
     curve_error: float | None = None  # relative
     costates: Curve | None = None
+    arcs: tuple[ArcCurve, ...] = ()
+    switches: tuple[SwitchPlace, ...] = ()  # those that were made unknowns of the problem
     prices: tuple[Price, ...] = ()
     checks: tuple[Check, ...] = ()
     diagnosis: Diagnosis | None = None

@@ -3,11 +3,14 @@
 from __future__ import annotations
 
 import time
+from dataclasses import replace
 from functools import cache
 
 import numpy as np
 
 from solvers import checks
+from solvers.arc_guess import with_sketches
+from solvers.beside import side_by_side
 from solvers.checks.redundancy import unambiguous
 from solvers.curve import Curve
 from solvers.deadline import Deadline, in_seconds
@@ -22,10 +25,11 @@ from solvers.lowering import lower
 from solvers.prices import prices
 from solvers.problem import Problem, Seek
 from solvers.pursuit import End, Pursuit, first_mesh, go_on, pursue
+from solvers.rejoin import rejoin
 from solvers.scaling import find_scales
 from solvers.sharpen import sharpen
 from solvers.slack import SLACK, rounded_functions, with_slacks
-from solvers.solution import Solution, Verdict, Watch
+from solvers.solution import Progress, Solution, SwitchPlace, Verdict, Watch
 from solvers.structure import present_switches
 from solvers.trajectory import costate_curve, curve
 from solvers.verdict import judge
@@ -43,6 +47,23 @@ NEARLY = 30.0
 
 def solve(problem: Problem, watch: Watch | None = None) -> Solution:
     """Solve a problem.  Never raises for a numerical failure: that is an outcome with a diagnosis."""
+    found = _of_arcs(problem, watch) if problem.arcs else _from_starts(problem, watch)
+    note = _about_switches(problem, found)
+    return replace(found, notes=(*found.notes, note)) if note else found
+
+
+def _of_arcs(problem: Problem, watch: Watch | None) -> Solution:
+    """Arcs are solved beside each other, on one common variable."""
+    beside = side_by_side(problem)
+
+    def hear(progress: Progress) -> bool:  # the common variable means nothing to a reader
+        return watch is not None and watch(replace(progress, breaks=None))
+
+    return rejoin(beside, _from_starts(with_sketches(beside), hear))
+
+
+def _from_starts(problem: Problem, watch: Watch | None) -> Solution:
+    """Solve a problem without arcs from as many starts as are asked for."""
     if problem.options.starts > 1:
         return solve_from_starts(problem, watch, _solve_once, _sizes(problem))
     return _solve_once(problem, watch)
@@ -151,7 +172,17 @@ def _solution(problem: Problem, pursuit: Pursuit, gauged: Gauged | None, began: 
         iterations=pursuit.iterations,
         times=times | {"checks": time.perf_counter() - solved_at},
         notes=tuple(_notes(problem, pursuit, gauged)),
+        switches=tuple(SwitchPlace(switch.place, switch.of) for switch in present_switches(pursuit.paths[-1])),
     )
+
+
+def _about_switches(problem: Problem, found: Solution) -> str:
+    """Where controls switch, as a sentence; empty where they do not."""
+    if not found.switches:
+        return ""
+    unit = f" {problem.independent_unit.text}" if problem.independent_unit.text else ""
+    listed = ", ".join(f"{switch.place / problem.independent_unit.factor:.9g}" for switch in found.switches)
+    return f"Switches were found and made unknowns of the problem: {problem.independent} = {listed}{unit}."
 
 
 def _notes(problem: Problem, pursuit: Pursuit, gauged: Gauged | None) -> list[str]:
@@ -165,11 +196,6 @@ def _notes(problem: Problem, pursuit: Pursuit, gauged: Gauged | None) -> list[st
     rounded = sorted(rounded_functions(pursuit.problem))
     if rounded:
         notes.append(f"{', '.join(rounded)} in the formulas: rounded over a width of 1e-9, so that derivatives exist.")
-    found = present_switches(pursuit.paths[-1])
-    if found:
-        unit = f" {problem.independent_unit.text}" if problem.independent_unit.text else ""
-        listed = ", ".join(f"{switch.place / problem.independent_unit.factor:.9g}" for switch in found)
-        notes.append(f"Switches were found and made unknowns of the problem: {problem.independent} = {listed}{unit}.")
     if pursuit.end is End.SETTLED:
         notes.append("The value stands still to the tolerance; the curve may be less exact than the value.")
     return notes

@@ -41,6 +41,7 @@ class Switch:
     low: float
     high: float
     touching: tuple[Quantity, int] | None = None  # with the side that is touched
+    of: frozenset[str] = frozenset()  # the unknowns that switch there, where that is known
 
 
 @dataclass(frozen=True, slots=True)
@@ -264,12 +265,15 @@ def present_switches(path: Trajectory) -> list[Switch]:
     """The switches that are places of a path already."""
     problem = path.program.compiled.lowered.problem
     touches = {touch.place: ((touch.name, touch.order), touch.side) for touch in problem.touches}
-    switched = (
-        (float(v), place.label)
-        for v, place in zip(path.places, problem.places, strict=True)
-        if place.label.startswith(SWITCH + " ")
-    )
-    return [Switch(at, at, at, touches.get(label)) for at, label in switched]
+    found = []
+    for index, place in enumerate(problem.places):
+        if not place.label.startswith(SWITCH + " "):
+            continue
+        at, touching = float(path.places[index]), touches.get(place.label)
+        changed = _on(problem.held, index - 1) ^ _on(problem.held, index)
+        names = {name for name, _, _ in changed} | ({touching[0][0]} if touching else set())
+        found.append(Switch(at, at, at, touching, frozenset(names)))
+    return found
 
 
 def _on(held: tuple[Held, ...], stretch: int) -> set[tuple[str, int, int]]:

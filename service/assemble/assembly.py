@@ -3,15 +3,16 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from itertools import chain
 
+from service.assemble.arcs import ArcBuilder
 from service.assemble.counting import check
 from service.assemble.covering import covered
 from service.assemble.declared import Declared, read_declared
 from service.assemble.dimensions import Sort, Units
 from service.assemble.domain import undefined
-from service.assemble.formulas import Formulas, Statement, parse_all
+from service.assemble.formulas import ArcFormulas, Expression, Formulas, Statement, parse_all
 from service.assemble.guesses import Guess, check_guess_names, read_guesses, with_guess
 from service.assemble.meaning import Meaning, read_meaning
 from service.assemble.measured import read_tables
@@ -21,10 +22,13 @@ from service.assemble.placement import misplaced
 from service.assemble.places import Places, find_places, settle
 from service.assemble.relations import Sides, conditions, convert, says_nothing, shown_unit
 from service.assemble.resolving import wrong_names
+from service.assemble.scopes import out_of_scope, without_place
+from service.assemble.spots import Spot, spot_of
 from service.complaints import Complaint, Stage, refuse
 from service.spec import Document
 from service.units import Measure
 from solvers.formula.nodes import At, Call, Name, Node, Number, children, walk, with_children
+from solvers.formula.printer import text
 from solvers.problem import Condition, Equation, Options, Problem, Seek, Unknown
 from solvers.tables import Table
 from solvers.units import PLAIN, Unit
@@ -47,9 +51,9 @@ def assemble(document: Document) -> Problem:
     measured = read_tables(document, names)
     formulas = parse_all(document, names, measured.tables)
     _check_size(formulas)
-    refuse(Stage.NAMES, wrong_names(formulas, names))
+    refuse(Stage.NAMES, [*wrong_names(formulas, names), *out_of_scope(formulas)])
     meaning = read_meaning(formulas, names)
-    refuse(Stage.FORMULAS, misplaced(formulas, meaning))
+    refuse(Stage.FORMULAS, [*misplaced(formulas, meaning), *without_place(formulas, meaning)])
     _check_written_out(formulas, meaning)
     declared = read_declared(document, names, measured.complaints)
     constants = {name: constant.value for name, constant in declared.constants.items()}
@@ -57,8 +61,7 @@ def assemble(document: Document) -> Problem:
 
     units = Units(names.independent, declared.sorts, constants, measured.sorts)
     for name in meaning.order:
-        sort = units.sort(formulas.where[name].tree, formulas.where[name])
-        units.sorts[name] = replace(sort, zero=False)
+        units.sorts[name] = units.sort_of_all(formulas.definitions[name])
     _check_ends(formulas, units)
     sides = {statement.pointer: convert(statement, units) for statement in _statements(formulas)}
     value_unit = _value_unit(formulas, units)
@@ -66,7 +69,7 @@ def assemble(document: Document) -> Problem:
     declared = with_guess(declared, guesses)
     refuse(Stage.UNITS, units.complaints)
 
-    stated = (*formulas.endpoints, *formulas.constraints)
+    stated = (*formulas.endpoints, *formulas.constraints, *(c for arc in formulas.arcs for c in arc.constraints))
     refuse(Stage.CONDITIONS, [found for statement in stated for found in says_nothing(statement, meaning)])
     places = find_places(formulas, units, dict(declared.parameters))
     builder = _Builder(document, formulas, meaning, declared, guesses, units, places, sides)
@@ -76,12 +79,16 @@ def assemble(document: Document) -> Problem:
 
 
 def _statements(formulas: Formulas) -> chain[Statement]:
-    return chain(formulas.dynamics, formulas.endpoints, formulas.constraints)
+    of_arcs = (statement for arc in formulas.arcs for statement in (*arc.dynamics, *arc.constraints))
+    return chain(formulas.dynamics, formulas.endpoints, formulas.constraints, of_arcs)
 
 
 def _check_length(document: Document) -> None:
     guesses = [guess for guess in document.guess.values() if isinstance(guess, str)]
-    formulas = chain(document.where.values(), document.dynamics, document.endpoints, document.constraints, guesses)
+    of_arcs = (text for arc in document.arcs for text in (*arc.where.values(), *arc.dynamics, *arc.constraints))
+    formulas = chain(
+        document.where.values(), document.dynamics, document.endpoints, document.constraints, guesses, of_arcs
+    )
     length = sum(len(formula) for formula in formulas)
     if length > LONGEST_TEXT:
         _too_large(f"The formulas have {length:,} characters together; at most {LONGEST_TEXT:,} are solved.")
@@ -112,8 +119,9 @@ def _check_written_out(formulas: Formulas, meaning: Meaning) -> None:
 
     for name in meaning.order:
         if not meaning.traits[name].moving:
-            sizes[name] = size(formulas.where[name].tree)
-    used = [formula.tree.sides for formula in (*formulas.endpoints, *formulas.constraints)]
+            sizes[name] = max(size(formula.tree) for formula in formulas.definitions[name])
+    stated = chain(formulas.endpoints, formulas.constraints, *(arc.constraints for arc in formulas.arcs))
+    used = [formula.tree.sides for formula in stated]
     used += [(formulas.endpoint.tree,)] if formulas.endpoint else []
     total = sum(size(part) for parts in used for part in parts)
     if total > LARGEST_SIZE:
@@ -129,22 +137,23 @@ def _figure(number: int) -> str:
 
 
 def _check_ends(formulas: Formulas, units: Units) -> None:
-    for end in formulas.ends:
+    for end in chain(formulas.ends, *(arc.ends for arc in formulas.arcs)):
         units.place(end.tree, end)
 
 
 def _value_unit(formulas: Formulas, units: Units) -> Unit:
-    """The unit of the functional; its two terms have to agree."""
-    measures: list[Measure] = []
-    terms: list[tuple[Node, Sort]] = []
-    if formulas.integrand is not None:
-        tree = formulas.integrand.tree
-        terms.append((tree, units.sort(Call("integral", (tree,), tree.span), formulas.integrand)))
+    """The unit of the functional; its terms have to agree."""
+    terms: list[tuple[Node, Sort, Expression]] = []
+    for integrand in formulas.integrands:
+        tree = integrand.tree
+        terms.append((tree, units.sort(Call("integral", (tree,), tree.span), integrand), integrand))
     if formulas.endpoint is not None:
-        terms.append((formulas.endpoint.tree, units.sort(formulas.endpoint.tree, formulas.endpoint)))
-    measures = [sort.measure for _, sort in terms if not sort.zero]
-    if len(measures) == 2 and formulas.endpoint is not None:
-        units.compare(terms[0], terms[1], formulas.endpoint)
+        tree = formulas.endpoint.tree
+        terms.append((tree, units.sort(tree, formulas.endpoint), formulas.endpoint))
+    told = [term for term in terms if not term[1].zero]
+    for tree, sort, formula in told[1:]:
+        units.compare(told[0][:2], (tree, sort), formula)
+    measures: list[Measure] = [sort.measure for _, sort, _ in told]
     return shown_unit(measures) if measures else PLAIN
 
 
@@ -163,12 +172,13 @@ class _Builder:
 
     def problem(self, value_unit: Unit, tables: tuple[Table, ...]) -> Problem:
         traits = self.meaning.traits
-        where = [(name, self.formulas.where[name].tree) for name in self.meaning.order if not traits[name].placed]
+        written = self.formulas.where
+        where = [(n, written[n].tree) for n in self.meaning.order if n in written and not traits[n].placed]
         orders = find_orders(self.formulas, self.meaning.names)
         functional, formulas = self.document.functional, self.formulas
         endpoints, constraints, integrals = self.sorted_conditions()
         solve = self.document.solve
-        return Problem(
+        problem = Problem(
             independent=self.meaning.names.independent,
             places=self.places.records,
             unknowns=tuple(self.unknown(name, orders[name]) for name in self.meaning.names.of(Kind.UNKNOWN)),
@@ -187,6 +197,20 @@ class _Builder:
             independent_unit=self.declared.units[self.meaning.names.independent],
             value_unit=value_unit,
         )
+        return self.arcs().on(problem) if formulas.arcs else problem
+
+    def arcs(self) -> ArcBuilder:
+        """What puts the arcs together."""
+        parameters = dict(self.declared.parameters)
+
+        def spot(node: At) -> Spot:
+            return spot_of(node.place, text(node.place), self.units, parameters)
+
+        def ends(arc: ArcFormulas) -> tuple[Spot, Spot]:
+            start, end = (spot_of(end.tree, end.text.strip(), self.units, parameters) for end in arc.ends)
+            return start, end
+
+        return ArcBuilder(self.formulas, self.meaning, self.places, self.sides, self.settle, spot, ends, self.unknown)
 
     def unknown(self, name: str, order: int) -> Unknown:
         lower, upper = self.declared.bounds[name]
@@ -212,13 +236,17 @@ class _Builder:
                 (integrals if traits.integral else constraints if traits.moving else endpoints).append(condition)
         return tuple(endpoints), tuple(constraints), tuple(integrals)
 
-    def settle(self, node: Node) -> Node:
-        """Places become those of the problem, and abbreviations that do not run along the curve are written out."""
+    def settle(self, node: Node, written: Mapping[str, Expression] | None = None) -> Node:
+        """Places become those of the problem, and abbreviations that do not run along the curve are written out.
+
+        `written` are the abbreviations where they are those of an arc; else what differs from arc to arc stays.
+        """
+        where = self.formulas.where if written is None else written
         match node:
             case At():
                 return settle(node, self.places, self.units, dict(self.declared.parameters))
-            case Name(name=name) if name in self.meaning.traits and not self.meaning.traits[name].moving:
-                return self.settle(self.formulas.where[name].tree)
+            case Name(name=name) if name in where and not self.meaning.traits[name].moving:
+                return self.settle(where[name].tree, written)
             case Number() | Name():
                 return node
-        return with_children(node, tuple(self.settle(part) for part in children(node)))
+        return with_children(node, tuple(self.settle(part, written) for part in children(node)))

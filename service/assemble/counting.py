@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from dataclasses import replace
 
 from service.assemble.freedom import Structure
 from service.assemble.matching import Matching
@@ -10,13 +11,29 @@ from service.assemble.orders import derivatives, reach_of
 from service.assemble.quoting import quoted
 from service.assemble.ranges import empty_ranges, excluded_values
 from service.assemble.values import FixedValues
-from service.complaints import Complaint, Stage, listing, refuse
+from service.complaints import Complaint, Refused, Stage, listing, refuse
+from solvers.beside import side_by_side
 from solvers.formula.nodes import At, Name, Node, walk
 from solvers.problem import Condition, Problem
 
 
 def check(problem: Problem) -> None:
     """Raise `Refused` (stage conditions) where the problem cannot have a solution, or not one solution."""
+    if not problem.arcs:
+        _check(problem)
+        return
+    beside = side_by_side(problem)
+    try:
+        _check(beside.problem)
+    except Refused as refused:
+        told: dict[tuple[str, str], Complaint] = {}
+        for complaint in refused.complaints:
+            place = beside.parted(complaint.pointer)[0]
+            told.setdefault((place, complaint.code), replace(complaint, pointer=place))
+        raise Refused(refused.stage, told.values()) from None
+
+
+def _check(problem: Problem) -> None:
     refuse(Stage.CONDITIONS, _pointless(problem))
     structure = Structure(problem)
     refuse(Stage.CONDITIONS, _unused(problem, structure))

@@ -9,7 +9,7 @@ from fractions import Fraction
 from types import MappingProxyType
 
 from service.assemble.domain import Values, literal, value_of
-from service.assemble.formulas import Formula
+from service.assemble.formulas import Expression, Formula
 from service.assemble.quoting import quoted
 from service.complaints import Complaint
 from service.units import ONE, PURE, Measure
@@ -78,6 +78,21 @@ class Units:
         if not order:
             return sort
         return Sort(sort.measure.times(by.measure, Fraction(-order)), sort.checked and by.checked)
+
+    def sort_of_all(self, formulas: Sequence[Expression]) -> Sort:
+        """The sort of an abbreviation that may have a formula for each arc: they have to be of one kind and unit."""
+        sorts = [self.sort(formula.tree, formula) for formula in formulas]
+        leading = leader(sorts)
+        lead = sorts[leading]
+        for sort, formula in zip(sorts, formulas, strict=True):
+            same = sort.measure.dimension == lead.measure.dimension and math.isclose(
+                sort.measure.factor, lead.measure.factor, rel_tol=1e-12
+            )
+            if not (same or sort.zero):
+                message = f"This is {sort.told} here and {lead.told} on another arc."
+                hint = "One name has one unit; a number gets one as a constant."
+                self.complaints.append(formula.complaint(formula.tree.span, "unit-clash", message, hint))
+        return replace(lead, checked=all(sort.checked or sort.zero for sort in sorts), zero=False)
 
     def sort(self, node: Node, formula: Formula) -> Sort:
         """The sort of a tree; after a clash the rest goes on unchecked."""

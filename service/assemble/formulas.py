@@ -5,11 +5,13 @@ from __future__ import annotations
 from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 from functools import partial
+from itertools import chain
 from typing import TypeVar
 
 from service.assemble.names import Names
 from service.complaints import Complaint, Stage, pointer, refuse, sentence
 from service.spec import Document
+from service.spec.model import ArcPart
 from solvers.formula.errors import FormulaError
 from solvers.formula.nodes import Node, Number, Relation, Span
 from solvers.formula.parser import Tables, parse_expression, parse_relation
@@ -48,6 +50,26 @@ Formula = Expression | Statement
 
 
 @dataclass(frozen=True, slots=True)
+class ArcFormulas:
+    """The formulas that an arc has of its own."""
+
+    name: str
+    pointer: str
+    ends: tuple[Expression, Expression]
+    integrand: Expression | None
+    where: Mapping[str, Expression]
+    dynamics: tuple[Statement, ...]
+    constraints: tuple[Statement, ...]
+
+    def running(self) -> Iterator[Formula]:
+        """All but the ends."""
+        yield from self.where.values()
+        yield from self.dynamics
+        yield from () if self.integrand is None else (self.integrand,)
+        yield from self.constraints
+
+
+@dataclass(frozen=True, slots=True)
 class Formulas:
     """Every formula of a document; `where` and `guesses` are by name."""
 
@@ -59,10 +81,27 @@ class Formulas:
     endpoints: tuple[Statement, ...]
     constraints: tuple[Statement, ...]
     guesses: Mapping[str, Expression]
+    arcs: tuple[ArcFormulas, ...] = ()
+
+    @property
+    def integrands(self) -> tuple[Expression, ...]:
+        """The integrands, of the whole and of arcs."""
+        found = (self.integrand, *(arc.integrand for arc in self.arcs))
+        return tuple(integrand for integrand in found if integrand is not None)
+
+    @property
+    def definitions(self) -> dict[str, tuple[Expression, ...]]:
+        """The abbreviations; one of arcs has a formula for each of them."""
+        found: dict[str, tuple[Expression, ...]] = {name: (formula,) for name, formula in self.where.items()}
+        for arc in self.arcs:
+            for name, formula in arc.where.items():
+                found[name] = (*found.get(name, ()), formula)
+        return found
 
     def all(self) -> Iterator[Formula]:
         """Every formula."""
         yield from self.ends
+        yield from (end for arc in self.arcs for end in arc.ends)
         yield from self.moving()
         yield from self.guesses.values()
 
@@ -73,6 +112,7 @@ class Formulas:
         yield from (part for part in (self.integrand, self.endpoint) if part is not None)
         yield from self.endpoints
         yield from self.constraints
+        yield from (formula for arc in self.arcs for formula in arc.running())
 
 
 def parse_all(document: Document, names: Names, tables: Tables) -> Formulas:
@@ -86,12 +126,23 @@ def parse_all(document: Document, names: Names, tables: Tables) -> Formulas:
         tree = _read(partial(parse_expression, tables=tables), text, Number(0.0, "0"), place, complaints)
         return Expression(tree, text, pointer(*place))
 
-    def statements(member: str, texts: tuple[str, ...]) -> tuple[Statement, ...]:
+    def statements(texts: tuple[str, ...], *member: str | int) -> tuple[Statement, ...]:
         parse = partial(parse_relation, tables=tables)
         nothing = Relation((Number(0.0, "0"), Number(0.0, "0")), ("=",))
         return tuple(
-            Statement(_read(parse, text, nothing, (member, index), complaints), text, pointer(member, index))
+            Statement(_read(parse, text, nothing, (*member, index), complaints), text, pointer(*member, index))
             for index, text in enumerate(texts)
+        )
+
+    def arc(part: ArcPart, *place: str | int) -> ArcFormulas:
+        return ArcFormulas(
+            name=part.name,
+            pointer=pointer(*place),
+            ends=(expression(part.start, *place, "from"), expression(part.end, *place, "to")),
+            integrand=expression(part.integrand, *place, "integrand") if part.integrand else None,
+            where={names.written[name]: expression(text, *place, "where", name) for name, text in part.where.items()},
+            dynamics=statements(part.dynamics, *place, "dynamics"),
+            constraints=statements(part.constraints, *place, "constraints"),
         )
 
     functional = document.functional
@@ -101,18 +152,20 @@ def parse_all(document: Document, names: Names, tables: Tables) -> Formulas:
             expression(document.independent.end, "independent", "to"),
         ),
         where={names.written[name]: expression(text, "where", name) for name, text in document.where.items()},
-        dynamics=statements("dynamics", document.dynamics),
+        dynamics=statements(document.dynamics, "dynamics"),
         integrand=expression(functional.integrand, "functional", "integrand") if functional.integrand else None,
         endpoint=expression(functional.endpoint, "functional", "endpoint") if functional.endpoint else None,
-        endpoints=statements("endpoints", document.endpoints),
-        constraints=statements("constraints", document.constraints),
+        endpoints=statements(document.endpoints, "endpoints"),
+        constraints=statements(document.constraints, "constraints"),
         guesses={
             names.written.get(name, name): expression(guess, "guess", name)
             for name, guess in document.guess.items()
             if isinstance(guess, str | float)
         },
+        arcs=tuple(arc(part, "arcs", index) for index, part in enumerate(document.arcs)),
     )
-    complaints += [found for line in formulas.dynamics for found in _no_equation(line)]
+    lines = chain(formulas.dynamics, *(arc.dynamics for arc in formulas.arcs))
+    complaints += [found for line in lines for found in _no_equation(line)]
     refuse(Stage.FORMULAS, complaints)
     return formulas
 

@@ -69,26 +69,28 @@ def read_meaning(formulas: Formulas, names: Names) -> Meaning:
     traits: dict[str, Traits] = {}
     meaning = Meaning(names, order, traits)
     for name in order:
-        traits[name] = meaning.of(formulas.where[name].tree)
+        traits[name] = meaning.of(*(formula.tree for formula in formulas.definitions[name]))
     return meaning
 
 
 def _order(formulas: Formulas, names: Names) -> tuple[str, ...]:
     """The abbreviations so that each uses earlier ones.  Raises `Refused` where they go round in a circle."""
+    definitions = formulas.definitions
     graph = {
         name: [
             node.name
+            for formula in found
             for node in walk(formula.tree)
             if isinstance(node, Name | At) and names.kinds.get(node.name) is Kind.ABBREVIATION
         ]
-        for name, formula in formulas.where.items()
+        for name, found in definitions.items()
     }
     try:
         return tuple(TopologicalSorter(graph).static_order())
     except CycleError as error:
         circle: list[str] = error.args[1]
-        first = min(circle[:-1], key=list(formulas.where).index)
-        formula = formulas.where[first]
+        first = min(circle[:-1], key=list(definitions).index)
+        formula = definitions[first][0]
         round_trip = " -> ".join(reversed(circle))
         message = f"The abbreviations use each other in a circle: {round_trip}."
         if len(circle) == 2:

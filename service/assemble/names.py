@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+import re
+from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass
 from enum import Enum
 from types import MappingProxyType
@@ -26,6 +27,8 @@ class Kind(Enum):
 
 
 RESERVED = frozenset({*FUNCTIONS, "integral", "pi"})
+
+_ARC_NAME = re.compile(r"\w[\w-]*( [\w-]+)*")
 
 HABITS = {
     "ln": "log", "arcsin": "asin", "arccos": "acos", "arctan": "atan", "arctan2": "atan2", "root": "sqrt",
@@ -76,14 +79,30 @@ def declare(document: Document) -> Names:
             message = f"“{spelling}” is built in and cannot be {kind.value}."
             hint = f"Call it '{spelling}_1', for instance."
             complaints.append(Complaint(place, None, "reserved-name", message, hint))
+        elif spelling in kinds and places[spelling].startswith("/arcs/") and place.startswith("/arcs/"):
+            written[name] = spelling  # each arc has its own
         elif spelling in kinds:
             message = f"“{spelling}” is {kind.value} here and {kinds[spelling].value} at {places[spelling]}."
             complaints.append(Complaint(place, None, "name-clash", message, "Give one of the two another name."))
         else:
             kinds[spelling], written[name], places[spelling] = kind, spelling, place
-    refuse(Stage.NAMES, complaints)
+    refuse(Stage.NAMES, [*complaints, *_names_of_arcs(document)])
     independent = written[document.independent.name]
     return Names(independent, MappingProxyType(kinds), MappingProxyType(written))
+
+
+def _names_of_arcs(document: Document) -> Iterator[Complaint]:
+    """Arcs are called by name in results: each has one of its own that can stand in a sentence."""
+    taken: dict[str, str] = {}
+    for index, arc in enumerate(document.arcs):
+        place = pointer("arcs", index, "name")
+        if not _ARC_NAME.fullmatch(arc.name):
+            message = f"“{arc.name}” is no name of an arc."
+            yield Complaint(place, None, "bad-name", message, "Use words of letters, digits, _ and -.")
+        elif arc.name in taken:
+            message = f"The arc at {taken[arc.name]} is called “{arc.name}” already."
+            yield Complaint(place, None, "name-clash", message, "Give one of the two another name.")
+        taken.setdefault(arc.name, pointer("arcs", index))
 
 
 def declarations(document: Document) -> Iterable[tuple[str, Kind, str]]:
@@ -98,3 +117,6 @@ def declarations(document: Document) -> Iterable[tuple[str, Kind, str]]:
     ):
         for name in table:
             yield name, kind, pointer(member, name)
+    for index, arc in enumerate(document.arcs):
+        for name in arc.where:
+            yield name, Kind.ABBREVIATION, pointer("arcs", index, "where", name)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from itertools import chain
 
 from service.assemble.formulas import Expression, Formula, Formulas
 from service.assemble.meaning import Meaning, Traits
@@ -13,11 +14,11 @@ from solvers.formula.nodes import At, Call, Name, Node, Relation, children, walk
 
 def misplaced(formulas: Formulas, meaning: Meaning) -> Iterator[Complaint]:
     """Values at places and integrals where a formula holds at every point, and the other way round."""
-    if formulas.integrand is not None:
-        yield from _nonlocal(formulas.integrand, meaning, "holds at every point")
-    for equation in formulas.dynamics:
+    for integrand in formulas.integrands:
+        yield from _nonlocal(integrand, meaning, "holds at every point")
+    for equation in chain(formulas.dynamics, *(arc.dynamics for arc in formulas.arcs)):
         yield from _nonlocal(equation, meaning, "holds at every point")
-    for abbreviation in formulas.where.values():
+    for abbreviation in chain(*formulas.definitions.values()):
         traits = meaning.of(abbreviation.tree)
         if traits.moving and (traits.placed or traits.integral):
             message = "This abbreviation mixes what runs along the curve with values at places or integrals."
@@ -27,14 +28,14 @@ def misplaced(formulas: Formulas, meaning: Meaning) -> Iterator[Complaint]:
         yield from _running(formulas.endpoint, meaning)
     for statement in formulas.endpoints:
         yield from _running(statement, meaning)
-    for formula in formulas.constraints:
+    for formula in chain(formulas.constraints, *(arc.constraints for arc in formulas.arcs)):
         traits = meaning.of(formula.tree)
         if traits.moving and (traits.placed or traits.integral):
             yield from _nonlocal(formula, meaning, "holds at every point because of the other names in it")
     for any_formula in formulas.all():
         yield from _inside_integral(any_formula, meaning)
         yield from _placed_twice(any_formula, meaning)
-    for end in formulas.ends:
+    for end in chain(formulas.ends, *(arc.ends for arc in formulas.arcs)):
         yield from _end(end, meaning)
 
 

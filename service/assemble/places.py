@@ -2,35 +2,17 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Iterator, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import replace
 
+from service.assemble.chain import unchained
 from service.assemble.dimensions import Units
-from service.assemble.domain import literal, value_of
-from service.assemble.formulas import Formula, Formulas
+from service.assemble.formulas import Expression, Formula, Formulas
+from service.assemble.spots import SAME, Spot, spot_of
 from service.complaints import Complaint, Stage, refuse
-from solvers.formula.nodes import At, Name, Node, Number, Relation, Span, walk
+from solvers.formula.nodes import At, Node, Relation, Span, walk
 from solvers.formula.printer import text
 from solvers.problem import Parameter, Place
-
-SAME = 1e-12
-"""Places closer than this, relative to their size, are one."""
-
-
-@dataclass(frozen=True, slots=True)
-class Spot:
-    """A place before it is put in order: a fixed one has a `value` in SI, a free one is the parameter `name`."""
-
-    place: Place
-    value: float | None
-    name: str | None
-
-    def same(self, other: Spot, room: float = 0.0) -> bool:
-        """Whether both are one place; fixed ones are within rounding, or within `room`."""
-        if self.value is not None and other.value is not None:
-            return math.isclose(self.value, other.value, rel_tol=SAME, abs_tol=room)
-        return self.value is other.value and self.name == other.name
 
 
 class Places:
@@ -50,37 +32,13 @@ class Places:
         return next(index for index, known in enumerate(self.spots) if known.same(spot, self.room))
 
 
-def spot_of(tree: Node, label: str, units: Units, parameters: dict[str, Parameter]) -> Spot:
-    """The spot of a place's tree.  Raises ArithmeticError, ValueError or LookupError where it has no value."""
-    if isinstance(tree, Name) and tree.name in parameters:
-        return Spot(Place(Name(tree.name), label), None, tree.name)
-    by = units.sorts[units.independent].measure
-    value = value_of(tree, units.constants)
-    names = [part.name for part in walk(tree) if isinstance(part, Name) and part.name != "pi"]
-    if all(not units.sorts[name].checked for name in names):  # numbers, in the unit of the independent variable
-        value *= by.factor
-        if not math.isfinite(value):
-            raise OverflowError("beyond the range of numbers")
-        if literal(tree) or by.factor != 1:
-            return Spot(Place(Number(value, label), label), value, None)
-    return Spot(Place(tree, label), value, None)
-
-
 def find_places(formulas: Formulas, units: Units, parameters: dict[str, Parameter]) -> Places:
     """Every place in order.  Raises `Refused` (stage conditions)."""
     complaints: list[Complaint] = []
-    ends: list[Spot] = []
-    for end in formulas.ends:
-        try:
-            ends.append(spot_of(end.tree, end.text.strip(), units, parameters))
-        except ArithmeticError:
-            message = f"The end {end.text} is beyond the range of numbers."
-            complaints.append(end.complaint(end.tree.span, "number-range", message, "Choose another unit or number."))
-    refuse(Stage.CONDITIONS, complaints)
-    first, last = ends
-    refuse(Stage.CONDITIONS, _ends(formulas, first, last, parameters))
-    inner: list[Spot] = []
-    room = _room(ends)
+    first, last = _spots(formulas.ends, units, parameters)
+    refuse(Stage.CONDITIONS, _ends(formulas.ends[1], "The ends", first, last, parameters))
+    inner = _junctions(formulas, (first, last), units, parameters)
+    room = _room((first, last))
     for formula, node in _named(formulas):
         label = text(node.place)
         try:
@@ -109,6 +67,39 @@ def find_places(formulas: Formulas, units: Units, parameters: dict[str, Paramete
     return Places((first, *inner, last))
 
 
+def _junctions(
+    formulas: Formulas, ends: tuple[Spot, Spot], units: Units, parameters: dict[str, Parameter]
+) -> list[Spot]:
+    """The places where arcs meet, in order.  Raises `Refused` where an arc has no length, or where they do not meet."""
+    if not formulas.arcs:
+        return []
+    spots = [_spots(arc.ends, units, parameters) for arc in formulas.arcs]
+    refuse(Stage.CONDITIONS, unchained(formulas.arcs, spots, ends, units.independent))
+    refuse(
+        Stage.CONDITIONS,
+        [
+            complaint
+            for arc, (start, end) in zip(formulas.arcs, spots, strict=True)
+            for complaint in _ends(arc.ends[1], f"The ends of the arc {arc.name}", start, end, parameters)
+        ],
+    )
+    return [end for _, end in spots[:-1]]
+
+
+def _spots(ends: tuple[Expression, Expression], units: Units, parameters: dict[str, Parameter]) -> tuple[Spot, Spot]:
+    """Two ends.  Raises `Refused` where one is no number."""
+    complaints: list[Complaint] = []
+    found: list[Spot] = []
+    for end in ends:
+        try:
+            found.append(spot_of(end.tree, end.text.strip(), units, parameters))
+        except ArithmeticError:
+            message = f"The end {end.text} is beyond the range of numbers."
+            complaints.append(end.complaint(end.tree.span, "number-range", message, "Choose another unit or number."))
+    refuse(Stage.CONDITIONS, complaints)
+    return found[0], found[1]
+
+
 def _room(spots: Sequence[Spot]) -> float:
     """How far apart two names for one place may be: rounding of the largest of the places."""
     return SAME * max((abs(spot.value) for spot in spots if spot.value is not None), default=0.0)
@@ -130,10 +121,9 @@ def _range(spot: Spot, parameters: dict[str, Parameter]) -> tuple[float, float]:
     return parameter.lower, parameter.upper
 
 
-def _ends(formulas: Formulas, first: Spot, last: Spot, parameters: dict[str, Parameter]) -> Iterator[Complaint]:
-    end = formulas.ends[1]
+def _ends(end: Expression, what: str, first: Spot, last: Spot, parameters: dict[str, Parameter]) -> Iterator[Complaint]:
     if first.same(last):
-        message = f"The ends, from ({first.place.label}) and to ({last.place.label}), are the same place."
+        message = f"{what}, from ({first.place.label}) and to ({last.place.label}), are the same place."
         yield end.complaint(Span(0, len(end.text)), "empty-interval", message, "Let the curve have some length.")
     elif _range(first, parameters)[0] >= _range(last, parameters)[1]:
         message = f"The end, to ({last.place.label}), never lies beyond from ({first.place.label})."

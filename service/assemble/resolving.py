@@ -16,7 +16,7 @@ HIGHEST_ORDER = 6
 def wrong_names(formulas: Formulas, names: Names) -> Iterator[Complaint]:
     """Names that are not declared, or used as what they are not."""
     for formula in formulas.all():
-        yield from _Checker(formula, names).complaints()
+        yield from _Checker(formula, names, sided=bool(formulas.arcs)).complaints()
     for guess in formulas.guesses.values():
         yield from _guess(guess, names)
 
@@ -24,9 +24,10 @@ def wrong_names(formulas: Formulas, names: Names) -> Iterator[Complaint]:
 class _Checker:
     """Walks one formula."""
 
-    def __init__(self, formula: Formula, names: Names) -> None:
+    def __init__(self, formula: Formula, names: Names, *, sided: bool) -> None:
         self.formula = formula
         self.names = names
+        self.sided = sided
 
     def complaints(self) -> Iterator[Complaint]:
         tree = self.formula.tree
@@ -75,9 +76,9 @@ class _Checker:
             yield self.no_derivative(node.span, node.name, kind)
         elif node.order > HIGHEST_ORDER:
             yield self.too_high(node.span, node.order)
-        if node.side:
+        if node.side and not self.sided:
             hint = f"write {node.name}({self.text(node.place.span)}) for the value there"
-            yield self.complaint(node.span, "not-yet", "One-sided values need arcs, which are not solved yet", hint)
+            yield self.complaint(node.span, "no-junction", "Only where arcs meet there are two values", hint)
         yield from self.place(node)
 
     def place(self, node: At) -> Iterator[Complaint]:

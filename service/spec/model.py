@@ -27,6 +27,9 @@ MOST_ROWS = 5_000
 MOST_COLUMNS = 501
 """Numbers of one such row."""
 
+MOST_ARCS = 12
+"""Arcs of one problem."""
+
 Number = Annotated[float, Field(allow_inf_nan=False)]
 Formula = Annotated[str, Field(min_length=1, max_length=LONGEST_FORMULA)]
 Relations = Annotated[tuple[Formula, ...], Field(max_length=MOST_RELATIONS)]
@@ -104,11 +107,19 @@ class FunctionalPart(Part):
         examples=["T", "x(T)^2"],
     )  # fmt: skip
 
-    @model_validator(mode="after")
-    def _something_sought(self) -> Self:
-        if self.integrand is None and self.endpoint is None:
-            raise PydanticCustomError("no_functional", "integrand, endpoint or both are needed")
-        return self
+
+class ArcPart(Part):
+    """A stretch of the independent variable with laws of its own, beside those that hold on all arcs."""
+
+    name: str = Field(min_length=1, max_length=40, examples=["burn"])
+    start: Number | Formula = Field(alias="from", description="Where it begins: as the ends of `independent`")
+    end: Number | Formula = Field(alias="to", description="Where it ends; there the next arc begins")
+    where: Annotated[dict[str, Formula], Field(
+        max_length=MOST_NAMES,
+        description="Name -> formula on this arc; usable outside where every arc has that name")] = {}  # fmt: skip
+    dynamics: Relations = Field((), description="Differential equations on this arc")
+    constraints: Relations = Field((), description="Relations everywhere on this arc, and integrals over it")
+    integrand: Formula | None = Field(None, description="Added to the integrand of `functional` on this arc")
 
 
 class SolvePart(Part):
@@ -155,10 +166,21 @@ class Document(Part):
         description="Relations that hold everywhere, and integral ones",
         examples=[["-2 <= u <= 2", "integral(sqrt(1 + y'^2)) = 4.2"]],
     )
+    arcs: Annotated[tuple[ArcPart, ...], Field(
+        max_length=MOST_ARCS,
+        description="Stretches that follow each other; what has dynamics is continuous where they meet, unless "
+        "`endpoints` has the value after a junction, as in `m(t1+) = m(t1-) - 40`")] = ()  # fmt: skip
     guess: Annotated[dict[str, Number | Formula | Points], Field(
         max_length=MOST_NAMES,
         description="Name -> formula or points for an unknown, number for a parameter")] = {}  # fmt: skip
     solve: SolvePart = SolvePart()
+
+    @model_validator(mode="after")
+    def _something_sought(self) -> Self:
+        functional = self.functional
+        if functional.integrand is functional.endpoint is None and not any(arc.integrand for arc in self.arcs):
+            raise PydanticCustomError("no_functional", "integrand, endpoint or both are needed")
+        return self
 
     _source: dict[str, Any] = PrivateAttr(default_factory=dict)
 

@@ -15,7 +15,6 @@ LARGEST_BODY = 256 * 1024
 """Bytes of a document."""
 
 LATER = {
-    "arcs": "One set of `dynamics` and `constraints` holds from end to end for now; split the problem by hand.",
     "region": "Problems have one independent variable for now.",
 }
 """Members that the format has room for and that this version does not solve yet, with what to do meanwhile."""

@@ -10,6 +10,7 @@ from pydantic_core import ErrorDetails
 
 from service.complaints import MOST, Complaint, closest, listing, pointer
 from service.spec.model import (
+    ArcPart,
     Document,
     FunctionalPart,
     IndependentPart,
@@ -44,6 +45,8 @@ def complaints_of(error: ValidationError, source: Any) -> list[Complaint]:
 
 def _place(detail: ErrorDetails, source: Any) -> str:
     """The pointer of the finding: steps that are in the document (pydantic adds the branch of an alternative)."""
+    if detail["type"] == "no_functional":  # found out with the whole document: an arc may have the integrand
+        return pointer("functional")
     steps: list[str | int] = []
     current = source
     for step in detail["loc"]:
@@ -122,7 +125,7 @@ def _members(location: tuple[str | int, ...]) -> tuple[str, ...]:
     """The members that the part at `location` may have, as they are written."""
     parts: dict[str, type[BaseModel]] = {
         "independent": IndependentPart, "parameters": ParameterPart, "unknowns": UnknownPart,
-        "functional": FunctionalPart, "solve": SolvePart, "tables": TablePart,
+        "functional": FunctionalPart, "arcs": ArcPart, "solve": SolvePart, "tables": TablePart,
     }  # fmt: skip
     part = parts[str(location[0])] if location else Document
     return tuple(field.alias or name for name, field in part.model_fields.items())
