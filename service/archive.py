@@ -88,7 +88,7 @@ class _Units:
         self._parameters = {parameter.name: parameter.unit for parameter in problem.parameters}
         self._conditions: dict[tuple[str, str], Condition] = {}
         self._pointers: dict[str, Condition] = {}
-        for condition in (*problem.endpoints, *problem.constraints, *problem.integrals):
+        for condition in problem.conditions:
             self._conditions[condition.label, condition.pointer] = condition
             self._pointers.setdefault(condition.pointer, condition)
 
@@ -137,19 +137,17 @@ def _numbers(values: Iterable[float], unit: Unit) -> list[float | None]:
     return [_in(value, unit) for value in values]
 
 
-def _pieces(curve: Curve, units: Mapping[str, Unit], independent: Unit) -> list[dict[str, Any]]:
+def _arc(name: str, curve: Curve, units: Mapping[str, Unit], independent: Unit) -> dict[str, Any]:
     """One arc: its mesh and, per function, the coefficients of each interval, lowest degree first."""
-    return [
-        {
-            "name": "",
-            "basis": "legendre",
-            "breaks": _numbers(curve.breaks.tolist(), independent),
-            "functions": {
-                name: [_numbers(piece.tolist(), units[name]) for piece in pieces]
-                for name, pieces in curve.functions.items()
-            },
-        }
-    ]
+    return {
+        "name": name,
+        "basis": "legendre",
+        "breaks": _numbers(curve.breaks.tolist(), independent),
+        "functions": {
+            name: [_numbers(piece.tolist(), units[name]) for piece in pieces]
+            for name, pieces in curve.functions.items()
+        },
+    }
 
 
 def _parameters(solution: Solution, units: _Units) -> dict[str, Any]:
@@ -173,25 +171,30 @@ def _extremal(extremal: Extremal, problem: Problem, units: _Units) -> dict[str, 
 
 
 def _curve(solution: Solution, problem: Problem, units: _Units) -> dict[str, Any] | None:
-    if solution.curve is None:
+    arcs = [(arc.name, arc.curve) for arc in solution.arcs]
+    if solution.curve is not None:
+        arcs = [("", solution.curve)]
+    if not arcs:
         return None
-    functions = {name: units.function(name) for name in solution.curve.functions}
+    functions = {name: units.function(name) for _, curve in arcs for name in curve.functions}
     return {
         "independent": {"name": problem.independent, "unit": problem.independent_unit.text},
         "error": _finite(solution.curve_error),
-        "arcs": _pieces(solution.curve, functions, problem.independent_unit),
+        "arcs": [_arc(name, curve, functions, problem.independent_unit) for name, curve in arcs],
         "units": {name: unit.text for name, unit in functions.items()},
     }
 
 
 def _costates(solution: Solution, problem: Problem, units: _Units) -> dict[str, Any]:
     """Costates are value per state; the multiplier of a pointwise condition is that per unit of the way too."""
-    if solution.costates is None:
-        return {"arcs": [], "units": {}}
+    arcs = [(arc.name, arc.costates) for arc in solution.arcs if arc.costates is not None]
+    if solution.costates is not None:
+        arcs = [("", solution.costates)]
     value, way = problem.value_unit, problem.independent_unit
-    conditions = {condition.label: condition.unit for condition in problem.constraints}
+    pointwise = (*problem.constraints, *(condition for arc in problem.arcs for condition in arc.constraints))
+    conditions = {condition.label: condition.unit for condition in pointwise}
     multipliers: dict[str, Unit] = {}
-    for name in solution.costates.functions:
+    for name in dict.fromkeys(name for _, curve in arcs for name in curve.functions):
         if (limit := conditions.get(name)) is not None:
             text = per(per(value.text, limit.text), way.text)
             multipliers[name] = Unit(text, value.factor / (limit.factor * way.factor))
@@ -199,7 +202,7 @@ def _costates(solution: Solution, problem: Problem, units: _Units) -> dict[str, 
             state = units.function(name)
             multipliers[name] = Unit(per(value.text, state.text), value.factor / state.factor)
     return {
-        "arcs": _pieces(solution.costates, multipliers, way),
+        "arcs": [_arc(name, curve, multipliers, way) for name, curve in arcs],
         "units": {name: unit.text for name, unit in multipliers.items()},
     }
 

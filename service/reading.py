@@ -7,9 +7,11 @@ from collections.abc import Iterator, Mapping
 from typing import Any
 
 from service.assemble.matching import Matching
-from service.assemble.orders import derivatives, reach_of
+from service.assemble.orders import Reach, derivatives, reach_of
 from service.complaints import listing, pointer
+from service.reading_arcs import arcs_read
 from service.spec import Document
+from service.spec.model import ArcPart
 from solvers.formula.mathml import Range, functional_mathml, mathml
 from solvers.formula.nodes import At, Call, Name, Node, Number, Relation, walk
 from solvers.formula.parser import Tables, parse_expression, parse_relation
@@ -17,7 +19,8 @@ from solvers.formula.printer import numeral, text
 from solvers.formula.tokens import read_name
 from solvers.lowering import Quantity, lower, primed
 from solvers.necessary import necessary_conditions
-from solvers.problem import Problem, Unknown
+from solvers.necessary_arcs import necessary_on_arcs
+from solvers.problem import Place, Problem, Unknown
 from web.unit_text import per
 
 Json = dict[str, Any]
@@ -31,7 +34,7 @@ def read_back(problem: Problem, document: Document) -> Json:
 
     `problem` is what the document was assembled to; formulas are shown as the document has them.
     """
-    roles = _Roles(problem)
+    roles = _RolesOnArcs(problem) if problem.arcs else _Roles(problem)
     return {
         "independent": {
             "name": problem.independent,
@@ -39,6 +42,7 @@ def read_back(problem: Problem, document: Document) -> Json:
             "from": _end(document.independent.start),
             "to": _end(document.independent.end),
         },
+        "arcs": list(arcs_read(problem)),
         "unknowns": [roles.unknown(unknown) for unknown in problem.unknowns],
         "parameters": [{"name": parameter.name, "unit": parameter.unit.text} for parameter in problem.parameters],
         "constants": [
@@ -59,7 +63,8 @@ def read_back(problem: Problem, document: Document) -> Json:
 
 def with_necessary(reading: Mapping[str, Any], problem: Problem, seconds: float = NECESSARY_SECONDS) -> Json:
     """The reading with the necessary conditions in symbols, as far as they are found within `seconds`."""
-    result = necessary_conditions(problem, time.monotonic() + seconds)
+    derive = necessary_on_arcs if problem.arcs else necessary_conditions
+    result = derive(problem, time.monotonic() + seconds)
     necessary = [
         {"kind": found.kind, "for": found.subject, "mathml": found.mathml, "text": found.text}
         for found in result.conditions
@@ -130,13 +135,44 @@ class _Roles:
 
     def natural(self) -> Iterator[str]:
         """The values at the ends that no condition is about."""
-        first, last = self.problem.places[0], self.problem.places[-1]
         bodies = [condition.body for condition in (*self.problem.endpoints, *self.problem.integrals)]
         values = [node for body in bodies for node in walk(body) if isinstance(node, At)]
-        for place in (first, last):
+        for place, states, reach in self.at_ends():
             here = [Name(node.name, node.order) for node in values if node.place == place.tree]
-            named = derivatives(here, self.reach)
-            yield from (f"{primed(state)}({place.label})" for state in self.lowered.states if state not in named)
+            named = derivatives(here, reach)
+            yield from (f"{primed(state)}({place.label})" for state in states if state not in named)
+
+    def at_ends(self) -> Iterator[tuple[Place, tuple[Quantity, ...], Reach]]:
+        """Both ends, each with the states there and what abbreviations depend on."""
+        yield self.problem.places[0], self.lowered.states, self.reach
+        yield self.problem.places[-1], self.lowered.states, self.reach
+
+
+class _RolesOnArcs(_Roles):
+    """The same for arcs: an unknown may be something else on each of them."""
+
+    def __init__(self, problem: Problem) -> None:
+        self.problem = problem
+        self.arcs = [(arc, _Roles(problem.along(arc))) for arc in problem.arcs]
+
+    def sentence(self, unknown: Unknown) -> tuple[bool, str]:
+        """Whether it is free on any arc, and what determines it on each."""
+        said: dict[str, list[str]] = {}
+        free = False
+        for arc, roles in self.arcs:
+            here = next((one for one in arc.unknowns if one.name == unknown.name), None)
+            free_here, what = (False, "in no law") if here is None else roles.sentence(here)
+            free |= free_here
+            said.setdefault(what, []).append(arc.name)
+        if len(said) == 1:
+            return free, f"{next(iter(said))} on all arcs"
+        return free, "; ".join(f"{what} on {listing(arcs)}" for what, arcs in said.items())
+
+    def at_ends(self) -> Iterator[tuple[Place, tuple[Quantity, ...], Reach]]:
+        """Both ends, with what the outermost arcs have there."""
+        first, last = self.arcs[0][1], self.arcs[-1][1]
+        yield self.problem.places[0], first.lowered.states, first.reach
+        yield self.problem.places[-1], last.lowered.states, last.reach
 
 
 def _functional(problem: Problem, document: Document) -> Json:
@@ -147,12 +183,15 @@ def _functional(problem: Problem, document: Document) -> Json:
     if endpoint is not None:
         parts.append(f"the endpoint term {text(endpoint)}" if integrand is not None else text(endpoint))
     if integrand is not None:
-        where = f"over {extent.independent} from {text(extent.start)} to {text(extent.end)}"
-        parts.append(f"the integral of {text(integrand)} {where}")
+        parts.append(f"the integral of {text(integrand)} over {_told(extent)}")
+    over = [
+        (parse_expression(arc.integrand, tables), _extent_of(document, arc)) for arc in document.arcs if arc.integrand
+    ]
+    parts += [f"the integral of {text(tree)} over {_told(range_)}" for tree, range_ in over]
     sought = "a stationary value" if functional.seek == "stationary" else f"the {functional.seek}"
     return {
         "sentence": f"Sought is {sought} of {' plus '.join(parts)}.",
-        "mathml": functional_mathml(functional.seek, integrand, endpoint, extent.independent, extent.start, extent.end),
+        "mathml": functional_mathml(functional.seek, integrand, endpoint, extent, over),
         "unit": problem.value_unit.text,
     }
 
@@ -160,32 +199,41 @@ def _functional(problem: Problem, document: Document) -> Json:
 def _relations(problem: Problem, document: Document) -> Iterator[Json]:
     """Every relation of the document in its order, abbreviations and bounds included."""
     extent, tables = _extent(document), _tables(problem)
-    groups = {"endpoint": problem.endpoints, "pointwise": problem.constraints, "integral": problem.integrals}
+    arcs = problem.arcs
+    pointwise = (*problem.constraints, *(condition for arc in arcs for condition in arc.constraints))
+    integrals = (*problem.integrals, *(condition for arc in arcs for condition in arc.integrals))
+    groups = {"endpoint": problem.endpoints, "pointwise": pointwise, "integral": integrals}
     conditions = {c.pointer: (kind, c.unit.text) for kind, group in groups.items() for c in group}
+    lines = (*problem.dynamics, *(line for arc in arcs for line in arc.dynamics))
+    rates = {line.pointer: _rate_unit(problem, line.determines) for line in lines}
 
-    def relation(place: str, kind: str, tree: Relation, unit: str, label: str | None = None) -> Json:
-        shown = mathml(tree, label=label, block=True, integrals=extent)
+    def relation(place: str, kind: str, tree: Relation, unit: str, over: Range, label: str | None = None) -> Json:
+        shown = mathml(tree, label=label, block=True, integrals=over)
         return {"pointer": place, "kind": kind, "mathml": shown, "unit": unit}
 
-    for name, formula in document.where.items():
-        tree = Relation((Name(read_name(name)), parse_expression(formula, tables)), ("=",))
-        yield relation(pointer("where", name), "abbreviation", tree, "")
-    rates = {line.pointer: _rate_unit(problem, line.determines) for line in problem.dynamics}
-    for index, formula in enumerate(document.dynamics):
-        place = pointer("dynamics", index)
-        yield relation(place, "dynamics", parse_relation(formula, tables), rates.get(place, ""), formula)
-    for member, kind in (("endpoints", "endpoint"), ("constraints", "pointwise")):
-        for index, formula in enumerate(getattr(document, member)):
-            place = pointer(member, index)
-            kind, unit = conditions.get(place, (kind, ""))
-            yield relation(place, kind, parse_relation(formula, tables), unit, formula)
+    def laws(part: Document | ArcPart, over: Range, *way: str | int) -> Iterator[Json]:
+        for name, formula in part.where.items():
+            tree = Relation((Name(read_name(name)), parse_expression(formula, tables)), ("=",))
+            yield relation(pointer(*way, "where", name), "abbreviation", tree, "", over)
+        for index, formula in enumerate(part.dynamics):
+            place = pointer(*way, "dynamics", index)
+            yield relation(place, "dynamics", parse_relation(formula, tables), rates.get(place, ""), over, formula)
+        for member, kind in (("endpoints", "endpoint"), ("constraints", "pointwise")):
+            for index, formula in enumerate(getattr(part, member, ())):
+                place = pointer(*way, member, index)
+                kind, unit = conditions.get(place, (kind, ""))
+                yield relation(place, kind, parse_relation(formula, tables), unit, over, formula)
+
+    yield from laws(document, extent)
+    for index, arc in enumerate(document.arcs):
+        yield from laws(arc, _extent_of(document, arc), "arcs", index)
     for member, parts, kind in (
         ("unknowns", document.unknowns, "pointwise"), ("parameters", document.parameters, "parameter"),
     ):  # fmt: skip
         for name, part in parts.items():
             bounds = _bounds(name, part.within)
             if bounds is not None:
-                yield relation(pointer(member, name, "within"), kind, bounds, part.unit)
+                yield relation(pointer(member, name, "within"), kind, bounds, part.unit, extent)
 
 
 def _bounds(name: str, within: tuple[float | None, float | None]) -> Relation | None:
@@ -210,9 +258,13 @@ def _notes(problem: Problem, document: Document) -> Iterator[str]:
     """What someone could have meant otherwise."""
     functional = document.functional
     formulas = [*document.where.values(), functional.integrand, functional.endpoint]
+    relations = [*document.dynamics, *document.endpoints, *document.constraints]
+    for arc in document.arcs:
+        formulas += [*arc.where.values(), arc.integrand]
+        relations += [*arc.dynamics, *arc.constraints]
     tables = _tables(problem)
     trees: list[Node] = [parse_expression(formula, tables) for formula in formulas if formula]
-    for formula in (*document.dynamics, *document.endpoints, *document.constraints):
+    for formula in relations:
         trees += parse_relation(formula, tables).sides
     used = {node.function for tree in trees for node in walk(tree) if isinstance(node, Call)}
     if "log" in used:
@@ -221,6 +273,15 @@ def _notes(problem: Problem, document: Document) -> Iterator[str]:
 
 def _tables(problem: Problem) -> Tables:
     return {table.name: table for table in problem.tables}
+
+
+def _extent_of(document: Document, arc: ArcPart) -> Range:
+    start, end = (parse_expression(_end(end)) for end in (arc.start, arc.end))
+    return Range(read_name(document.independent.name), start, end)
+
+
+def _told(extent: Range) -> str:
+    return f"{extent.independent} from {text(extent.start)} to {text(extent.end)}"
 
 
 def _extent(document: Document) -> Range:

@@ -182,6 +182,15 @@ class ConstantRead(Part):
     tolerance: float | None
 
 
+class ArcRead(Part):
+    """An arc, and what happens where the next one begins."""
+
+    name: str
+    start: str = Field(alias="from")
+    end: str = Field(alias="to")
+    sentence: str
+
+
 class ParameterRead(Part):
     """An unknown number."""
 
@@ -216,6 +225,7 @@ class NecessaryCondition(Part):
         "costate",
         "stationarity",
         "natural boundary",
+        "corner",
         "first integral",
     ]
     subject: str = Field(alias="for")
@@ -238,6 +248,7 @@ class ReadingDocument(Part):
     unknowns: list[UnknownRead]
     parameters: list[ParameterRead]
     constants: list[ConstantRead]
+    arcs: list[ArcRead] = Field(description="empty where one set of laws holds from end to end")
     functional: FunctionalRead
     relations: list[RelationRead]
     necessary: list[NecessaryCondition] | None = Field(default=None, description="only where it was asked for")

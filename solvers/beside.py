@@ -98,7 +98,7 @@ def length_of(problem: Problem, place: int) -> Node:
 
 def _pieces(problem: Problem) -> Iterator[Piece]:
     for index, arc in enumerate(problem.arcs):
-        lowered = lower(Problem(problem.independent, (), arc.unknowns, where=arc.where, dynamics=arc.dynamics))
+        lowered = lower(problem.along(arc))
         for part, place in enumerate(range(arc.first, arc.last), start=1):
             label = arc.name if arc.last - arc.first == 1 else f"{arc.name}, part {part}"
             yield Piece(label, index, place, lowered)

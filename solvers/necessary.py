@@ -79,17 +79,18 @@ def necessary_conditions(problem: Problem, deadline: float | None = None) -> Nec
     found: list[Necessary] = []
     notes: list[str] = []
     try:
-        lowered = lower(problem)
-        derivation = _Derivation(problem, lowered, augment(problem, lowered, check), check)
-        notes += [*derivation.augmented.notes, *_limits(problem)]
+        derivation = derive(problem, check)
+        notes += [*derivation.augmented.notes, *limits_left_out(problem)]
+        inner = ", ".join(place.label for place in problem.places[1:-1])
+        if inner:
+            notes.append(f"At {inner} the momenta or costates may jump.")
         for condition in derivation.conditions():
-            if condition.kind == "Hamiltonian" and (extreme := _extreme(problem, lowered)):
+            if condition.kind == "Hamiltonian" and (extreme := extreme_controls(problem, derivation.lowered)):
                 notes.append(extreme)
-            parts = sum(size(side) for side in condition.relation.sides)
-            if parts <= DISPLAY_LIMIT:
+            if (note := left_out(condition)) is None:
                 found.append(condition)
             else:
-                notes.append(f"The {condition.kind} condition of {condition.subject} is left out: {parts:,} parts.")
+                notes.append(note)
     except TooLargeError as error:
         notes.append(f"The necessary conditions are left out: {error}.")
     except TimeoutError:
@@ -97,7 +98,21 @@ def necessary_conditions(problem: Problem, deadline: float | None = None) -> Nec
     return NecessaryConditions(tuple(found), tuple(notes))
 
 
-def _extreme(problem: Problem, lowered: Lowered) -> str:
+def derive(problem: Problem, check: Callable[[], None]) -> Derivation:
+    """The derivation of a problem's conditions.  Raises TooLargeError, ValueError, and what `check` raises."""
+    lowered = lower(problem)
+    return Derivation(problem, lowered, augment(problem, lowered, check), check)
+
+
+def left_out(condition: Necessary) -> str | None:
+    """A note where a condition is too long to be read, else None."""
+    parts = sum(size(side) for side in condition.relation.sides)
+    if parts <= DISPLAY_LIMIT:
+        return None
+    return f"The {condition.kind} condition of {condition.subject} is left out: {parts:,} parts."
+
+
+def extreme_controls(problem: Problem, lowered: Lowered) -> str:
     """What the controls do where the Hamiltonian has no stationary point among the allowed values."""
     extreme = {Seek.MINIMUM: "least", Seek.MAXIMUM: "greatest"}.get(problem.seek)
     if extreme is None or not lowered.controls:
@@ -106,7 +121,7 @@ def _extreme(problem: Problem, lowered: Lowered) -> str:
     return f"Of all allowed values of {names}, those of the optimum make the Hamiltonian {extreme}."
 
 
-def _limits(problem: Problem) -> Iterator[str]:
+def limits_left_out(problem: Problem) -> Iterator[str]:
     """Say which inequalities the formulas leave out."""
     infinity = float("inf")
     limits = [condition.label for condition in problem.constraints if not condition.equality]
@@ -114,13 +129,12 @@ def _limits(problem: Problem) -> Iterator[str]:
     if limits:
         named = "; ".join(dict.fromkeys(limits))
         yield f"The equations hold where no limit binds ({named}); where one binds, its multiplier joins."
-    inner = ", ".join(place.label for place in problem.places[1:-1])
-    if inner:
-        yield f"At {inner} the momenta or costates may jump."
 
 
 @dataclass(frozen=True)
-class _Derivation:
+class Derivation:
+    """What the conditions of one problem are made from."""
+
     problem: Problem
     lowered: Lowered
     augmented: Augmented
@@ -128,10 +142,15 @@ class _Derivation:
     slopes: dict[tuple[Node, Node], Node] = field(default_factory=dict)  # those found so far
 
     def conditions(self) -> Iterator[Necessary]:
-        """Euler-Lagrange where the integrand holds every highest derivative and no dynamics give one."""
+        """Those of the calculus of variations where they say more, else those of optimal control."""
+        return self.variational_system() if self.variational else self.hamiltonian_system()
+
+    @property
+    def variational(self) -> bool:
+        """Whether the integrand holds every highest derivative and no dynamics give one."""
         highest = [Name(unknown.name, unknown.order) for unknown in self.problem.unknowns if unknown.order]
         held = all(self.slope(self.lagrangian, name) != ZERO for name in highest)
-        return self.variational_system() if held and not self.lowered.given else self.hamiltonian_system()
+        return held and not self.lowered.given
 
     @cached_property
     def lagrangian(self) -> Node:
@@ -143,23 +162,48 @@ class _Derivation:
         if self.problem.integrals or self.augmented.functions - orders.keys():
             shown = Name(unused(self.problem, "L"))
             yield self.definition("Lagrangian", shown, lagrangian)
-        momenta: dict[Quantity, Node] = {}
+        momenta = self.momenta
         for name, order in orders.items():
-            slopes = [factored(self.slope(lagrangian, Name(name, k))) for k in range(order + 1)]
-            for k in range(order):
-                momenta[name, k] = factored(self.alternating(slopes[k + 1 :]))
+            slopes = self.slopes_of_lagrangian[name]
             if order == 1:
                 yield self.condition("Euler-Lagrange", name, self.along(slopes[1]), slopes[0])
             else:
                 yield self.condition("Euler-Lagrange", name, self.alternating(slopes), ZERO)
         yield from self.boundary(momenta, sign=1)
-        lost = [_spread(momentum, Name(name, k + 1)) for (name, k), momentum in momenta.items()]
-        energy = add([factored(self.augmented.integrand), *(negative(term) for term in lost)])
-        yield from self.free_numbers(factored(energy), lagrangian)
+        yield from self.free_numbers(self.energy, lagrangian)
+
+    @cached_property
+    def slopes_of_lagrangian(self) -> dict[str, list[Node]]:
+        """The slopes of the Lagrangian in every unknown and its derivatives, lowest first."""
+        return {
+            unknown.name: [
+                factored(self.slope(self.lagrangian, Name(unknown.name, k))) for k in range(unknown.order + 1)
+            ]
+            for unknown in self.problem.unknowns
+        }
+
+    @cached_property
+    def momenta(self) -> dict[Quantity, Node]:
+        """What a change of each derivative below the highest costs at the last end, by the Lagrangian."""
+        return {
+            (unknown.name, k): factored(self.alternating(self.slopes_of_lagrangian[unknown.name][k + 1 :]))
+            for unknown in self.problem.unknowns
+            for k in range(unknown.order)
+        }
+
+    @property
+    def energy(self) -> Node:
+        """What the functional gains where the curve is made longer: the Lagrangian less momenta times slopes."""
+        lost = [_spread(momentum, Name(name, k + 1)) for (name, k), momentum in self.momenta.items()]
+        return factored(add([factored(self.augmented.integrand), *(negative(term) for term in lost)]))
+
+    def costates(self) -> dict[Quantity, Name]:
+        """The costate of every state, by its name."""
+        letter = unused(self.problem, "p")
+        return {q: Name(f"{letter}_{q[0]}" + (f"_{q[1]}" if q[1] else "")) for q in self.lowered.states}
 
     def hamiltonian_system(self) -> Iterator[Necessary]:
-        letter = unused(self.problem, "p")
-        costates = {q: Name(f"{letter}_{q[0]}" + (f"_{q[1]}" if q[1] else "")) for q in self.lowered.states}
+        costates = self.costates()
         terms = [self.explicit(self.lagrangian)]
         for (name, k), costate in costates.items():
             terms.append(multiply([costate, add([self.explicit(Name(name, k + 1))])]))

@@ -8,7 +8,7 @@ abbreviation and its place is one of `Problem.places`.
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from enum import Enum
 
 from solvers.formula.nodes import Node
@@ -239,3 +239,20 @@ class Problem:
         """All conditions that the user stated, those of the arcs included."""
         of_arcs = (condition for arc in self.arcs for condition in (*arc.constraints, *arc.integrals))
         return (*self.endpoints, *self.constraints, *self.integrals, *of_arcs)
+
+    def along(self, arc: Arc) -> Problem:
+        """The laws of one arc as a problem of their own, without what holds at places."""
+        return replace(
+            self,
+            places=self.places[arc.first : arc.last + 1],
+            unknowns=arc.unknowns,
+            integrand=arc.integrand,
+            endpoint=None,
+            where=arc.where,
+            dynamics=arc.dynamics,
+            endpoints=(),
+            constraints=arc.constraints,
+            integrals=arc.integrals,
+            arcs=(),
+            jumps=frozenset(),
+        )

@@ -9,11 +9,12 @@ import numpy as np
 from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
-from solvers.beside import Beside, Piece
+from solvers.beside import ON, Beside, Piece
+from solvers.checks import free_ends
 from solvers.curve import Curve
 from solvers.limits import number
 from solvers.lowering import primed
-from solvers.solution import ArcCurve, Check, Diagnosis, Finding, Price, Solution, SwitchPlace
+from solvers.solution import ArcCurve, Check, Diagnosis, Finding, Price, Solution, Status, SwitchPlace
 
 Array = NDArray[np.float64]
 
@@ -136,7 +137,23 @@ def _at(piece: Piece | None, place: float | None, places: Array) -> float | None
 
 def _check(beside: Beside, check: Check, places: Array) -> Check:
     _, piece = beside.parted(check.subject)
-    return replace(check, place=_at(piece, check.place, places))
+    sentence = _told(beside, check.sentence)
+    if check.name == free_ends.NAME and check.status is Status.PASSED:
+        sentence += " At junctions the costates jump by the prices of what is asked there, and no more; the Hamiltonian"
+        sentence += " is continuous where the place is free."
+    return replace(
+        check, place=_at(piece, check.place, places), subject=_told(beside, check.subject), sentence=sentence
+    )
+
+
+def _told(beside: Beside, text: str) -> str:
+    """A text with the ends of copies as sides of places: `x on burn(end)` is x(t1-)."""
+    last = len(beside.original.places) - 1
+    for piece in beside.pieces:
+        for end, place, side in (("(start)", piece.place, "+"), ("(end)", piece.place + 1, "-")):
+            label = beside.original.places[place].label + (side if 0 < place < last else "")
+            text = text.replace(f"{ON}{piece.label}{end}", f"({label})")
+    return text
 
 
 def _switches(beside: Beside, found: Solution, places: Array) -> Iterator[SwitchPlace]:

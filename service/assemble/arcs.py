@@ -234,7 +234,7 @@ def _twice(law: Laws, stretch: Stretch) -> Iterable[Complaint]:
         before = given.setdefault((left.name, left.order), line)
         own = line.pointer.startswith(law.formulas.pointer)
         if before is not line and own and not before.pointer.startswith(law.formulas.pointer):
-            message = f"{left.name}{chr(39) * left.order} is given by {quoted(before.label)} on all arcs already."
+            message = f"“{left.name}{chr(39) * left.order}” is given by {quoted(before.label)} on all arcs already."
             hint = "Give it outside of the arcs, or on each of them."
             yield Complaint(line.pointer, None, "given-twice", message, hint)
 

@@ -102,7 +102,7 @@ class Junctions:
             return
         side = self.side(node, place)
         if side is None:
-            message = f"{shown} may differ on the two sides of {label}."
+            message = f"“{shown}” may differ on the two sides of {label}."
             hint = f"Write {shown}({label}-) for the value before, {shown}({label}+) for the one after."
             yield formula.complaint(node.span, "which-side", message, hint)
             return
@@ -110,6 +110,6 @@ class Junctions:
         assert stretch is not None  # each place has an arc on one side at least
         if not self.known(stretch, node):
             missing = listing(sorted({name for name, _ in stretch.behind(node) if name not in stretch.orders}))
-            message = f"{missing} is in no law of the arc {stretch.formulas.name}: it has no value there."
+            message = f"“{missing}” is in no law of the arc {stretch.formulas.name}: it has no value there."
             hint = f"Say how it moves there, as in {missing}' = 0."
             yield formula.complaint(node.span, "not-on-arc", message, hint)

@@ -169,7 +169,7 @@ class Document(Part):
     arcs: Annotated[tuple[ArcPart, ...], Field(
         max_length=MOST_ARCS,
         description="Stretches that follow each other; what has dynamics is continuous where they meet, unless "
-        "`endpoints` has the value after a junction, as in `m(t1+) = m(t1-) - 40`")] = ()  # fmt: skip
+        "`endpoints` has the value after a junction, as in `m(t1+) = m(t1-) - shell`")] = ()  # fmt: skip
     guess: Annotated[dict[str, Number | Formula | Points], Field(
         max_length=MOST_NAMES,
         description="Name -> formula or points for an unknown, number for a parameter")] = {}  # fmt: skip

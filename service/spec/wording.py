@@ -69,7 +69,7 @@ def _complaint(place: str, details: list[ErrorDetails]) -> Complaint:
         message = f"Here stands {_shown(details[0]['input'])}; expected {listing(wanted, 'or')}."
         return Complaint(place, None, "wrong-type", message, f"Write {listing(wanted, 'or')} here.")
     detail = others[0]
-    name = str(detail["loc"][-1])
+    name = str(detail["loc"][-1]) if detail["loc"] else ""
     context: dict[str, Any] = detail.get("ctx", {})
     match detail["type"]:
         case "extra_forbidden":

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+from collections.abc import Sequence
 from dataclasses import dataclass
 from html import escape
 from itertools import pairwise
@@ -70,17 +71,24 @@ def mathml(
 
 
 def functional_mathml(
-    seek: str, integrand: Node | None, endpoint: Node | None, independent: str, start: Node, end: Node
+    seek: str, integrand: Node | None, endpoint: Node | None, extent: Range, parts: Sequence[tuple[Node, Range]] = ()
 ) -> str:
-    """What is sought: "minimum of" (or "maximum", "stationary") the endpoint term plus the integral."""
-    extent = Range(independent, start, end)
+    """What is sought: "minimum of" (or "maximum", "stationary") the endpoint term plus the integral, plus integrals
+    over parts of the range.
+    """
     terms = [] if endpoint is None else [endpoint]
     if integrand is not None:
         terms.append(Call("integral", (integrand,)))
-    tree = terms[0] if len(terms) == 1 else Sum(tuple(terms), (False, False))
+    shown, told = [], []
+    if terms:
+        tree = terms[0] if len(terms) == 1 else Sum(tuple(terms), (False, False))
+        shown, told = [fragment(tree, extent)], [text(tree)]
+    for part, over in parts:
+        shown.append(fragment(Call("integral", (part,)), over))
+        told.append(f"integral({text(part)}) from {text(over.start)} to {text(over.end)}")
     what = f"{seek} value" if seek == "stationary" else seek
     heading = f"<mtext>{escape(what)} of\u2002</mtext>"
-    return element(heading + fragment(tree, extent), f"{what} of {text(tree)}", block=True)
+    return element(heading + "<mo>+</mo>".join(shown), f"{what} of {' + '.join(told)}", block=True)
 
 
 def element(inner: str, annotation: str, *, block: bool = False) -> str:

@@ -6,7 +6,7 @@ import json
 from collections.abc import Mapping
 from typing import Any
 
-from web.form.reading import REST
+from web.form.reading import REST, value_from_text
 from web.form.sections import HEAD, SECTIONS, Column, Kind, Section, Shape
 
 MOST_FIELDS = 900
@@ -23,7 +23,7 @@ def form_from_document(document: Mapping[str, Any]) -> dict[str, str]:
         if isinstance(rest.get(column.member), str):
             fields[column.key] = rest.pop(column.member)
     for section in SECTIONS:
-        fill = {Shape.MAP: _fill_map, Shape.LIST: _fill_list, Shape.RECORD: _fill_record}[section.shape]
+        fill = _FILL[section.shape]
         shown = fill(section, rest.get(section.name))
         if shown is not None:
             fields.update(shown)
@@ -60,6 +60,20 @@ def _fill_list(section: Section, content: Any) -> dict[str, str] | None:
     if not isinstance(content, list) or not all(isinstance(item, str) and item.strip() for item in content):
         return None
     return {f"{section.name}.{number}.{column.key}": item for number, item in enumerate(content)}
+
+
+def _fill_objects(section: Section, content: Any) -> dict[str, str] | None:
+    if content is None:
+        return {}
+    if not isinstance(content, list) or not content:
+        return None
+    fields: dict[str, str] = {}
+    for number, entry in enumerate(content):
+        shown = _fill_entry(section, f"{section.name}.{number}", entry)
+        if not shown:
+            return None
+        fields |= shown
+    return fields
 
 
 def _fill_record(section: Section, content: Any) -> dict[str, str] | None:
@@ -105,11 +119,24 @@ def _text(value: Any, column: Column) -> str | None:
     """The text that a field shows for a value; None where no text of this field would give the value back."""
     if column.kind is Kind.CHOICE:
         return value if value in column.choices else None
+    if column.kind in (Kind.LINES, Kind.ENTRIES):
+        text = _lines(value, column.kind)
+        return text if text and value_from_text(text, column.kind) == value else None
     if isinstance(value, str):
         return value if value.strip() else None
     if column.kind in (Kind.VALUE, Kind.GUESS) and (_is_number(value) or isinstance(value, list | dict)):
         return _compact(value)
     return None
+
+
+def _lines(value: Any, kind: Kind) -> str:
+    """Formulas, or names and formulas, as lines; empty where the value is something else."""
+    lines: list[Any] = []
+    if kind is Kind.LINES and isinstance(value, list):
+        lines = value
+    elif kind is Kind.ENTRIES and isinstance(value, dict) and all(isinstance(part, str) for part in value.values()):
+        lines = [f"{name} = {formula}" for name, formula in value.items()]
+    return "\n".join(lines) if all(isinstance(line, str) for line in lines) else ""
 
 
 def _is_number(value: Any) -> bool:
@@ -118,3 +145,8 @@ def _is_number(value: Any) -> bool:
 
 def _compact(value: Any) -> str:
     return json.dumps(value, ensure_ascii=False)
+
+
+_FILL = {
+    Shape.MAP: _fill_map, Shape.LIST: _fill_list, Shape.OBJECTS: _fill_objects, Shape.RECORD: _fill_record,
+}  # fmt: skip

@@ -5,7 +5,7 @@ from __future__ import annotations
 import json
 import math
 import re
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from typing import Any
 
@@ -53,8 +53,7 @@ def read_form(fields: Mapping[str, str]) -> FormReading:
             members[column.member] = text
         places[f"/{column.member}"] = column.key
     for section in SECTIONS:
-        read = {Shape.MAP: _read_map, Shape.LIST: _read_list, Shape.RECORD: _read_record}[section.shape]
-        found = read(section, fields, places, complaints)
+        found = _READ[section.shape](section, fields, places, complaints)
         if found:
             members[section.name] = found
     ordered = [name for name in ORDER if name in members]
@@ -80,7 +79,16 @@ def value_from_text(text: str, kind: Kind) -> Any:
             return json.loads(text, parse_constant=_no_constant)
         except (ValueError, RecursionError):
             return text
+    if kind in (Kind.LINES, Kind.ENTRIES):
+        lines = [line.strip() for line in text.split("\n") if line.strip()]
+        return lines if kind is Kind.LINES else dict(_named(line) for line in lines)
     return text
+
+
+def _named(line: str) -> tuple[str, str]:
+    """Name and formula of a line `name = formula`."""
+    name, _, formula = line.partition("=")
+    return name.strip(), formula.strip()
 
 
 def field_of(pointer: str, places: Mapping[str, str]) -> str:
@@ -130,6 +138,41 @@ def _read_list(
             places[f"/{section.name}/{len(found)}"] = field
             found.append(value_from_text(fields[field], column.kind))
     return found
+
+
+def _read_objects(
+    section: Section, fields: Mapping[str, str], places: dict[str, str], complaints: list[FieldComplaint]
+) -> list[Any]:
+    found: list[Any] = []
+    places[f"/{section.name}"] = f"{section.name}.0.{section.columns[0].key}"
+    for number in rows(section.name, fields):
+        row = f"{section.name}.{number}"
+        entry = _entry(section, row, fields)
+        if entry is None:
+            continue
+        for column in section.columns:
+            if column.kind is Kind.ENTRIES:
+                complaints += _unnamed(f"{row}.{column.key}", fields)
+        pointer = f"/{section.name}/{len(found)}"
+        _place_columns(section, pointer, row, places)
+        places[pointer] = f"{row}.{section.columns[0].key}"
+        found.append(entry)
+    return found
+
+
+def _unnamed(field: str, fields: Mapping[str, str]) -> Iterator[FieldComplaint]:
+    """Lines that do not say what is called how, and names that come twice: a document could not hold them."""
+    taken: set[str] = set()
+    for line in fields.get(field, "").split("\n"):
+        name, formula = _named(line)
+        if not line.strip():
+            continue
+        if not name or not formula:
+            message = f"The line “{line.strip()[:40]}” gives no name to a formula."
+            yield FieldComplaint(field, "no-name", message, "Write name = formula.")
+        elif name in taken:
+            yield FieldComplaint(field, "name-twice", f"The name {name} is given twice.", "Choose another name.")
+        taken.add(name)
 
 
 def _read_record(
@@ -185,3 +228,8 @@ def _rest(fields: Mapping[str, str], name: str) -> dict[str, Any]:
 
 def _no_constant(text: str) -> Any:
     raise ValueError(f"{text} is no JSON")
+
+
+_READ = {
+    Shape.MAP: _read_map, Shape.LIST: _read_list, Shape.OBJECTS: _read_objects, Shape.RECORD: _read_record,
+}  # fmt: skip

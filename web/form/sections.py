@@ -15,6 +15,7 @@ class Shape(Enum):
 
     MAP = "map"  # name -> entry, one row each; the first field of a row is the name
     LIST = "list"  # formulas, one row each
+    OBJECTS = "objects"  # a list of objects, one row each
     RECORD = "record"  # a fixed set of fields
 
 
@@ -25,6 +26,8 @@ class Kind(Enum):
     FORMULA = "formula"  # a string, shown as mathematics beside the field
     VALUE = "value"  # a number where it reads as one, else a string such as "3 m +/- 0.1 m"
     GUESS = "guess"  # a number, a formula, or points as JSON
+    LINES = "lines"  # formulas, one on each line
+    ENTRIES = "entries"  # name = formula, one on each line
     CHOICE = "choice"  # one of `Column.choices`
 
 
@@ -153,6 +156,25 @@ SECTIONS = (
         folded=True,
     ),
     Section(
+        "arcs",
+        Shape.OBJECTS,
+        "Arcs",
+        "Stretches with laws of their own, one after the other from the first end to the last; all that stands above "
+        "holds on each of them. One formula to a line. Where two meet, what has dynamics is continuous, unless the "
+        "endpoints name the value after: m(t1+) = m(t1-) - shell.",
+        (
+            Column("name", "name", "Name", example="burn", width="medium"),
+            Column("from", "from", "From", Kind.VALUE, example="0", width="narrow"),
+            Column("to", "to", "To", Kind.VALUE, example="t1", width="narrow"),
+            Column("integrand", "integrand", "Integrand", Kind.FORMULA, example="n*sqrt(1 + y'^2)"),
+            Column("where", "where", "Where", Kind.ENTRIES, example="F = 300*u"),
+            Column("dynamics", "dynamics", "Dynamics", Kind.LINES, example="v' = F/m - g"),
+            Column("constraints", "constraints", "Constraints", Kind.LINES, example="0 <= u <= 1"),
+        ),
+        row="arc",
+        folded=True,
+    ),
+    Section(
         "guess",
         Shape.MAP,
         "Guess",
@@ -183,3 +205,10 @@ ORDER = (
     "functional", "endpoints", "constraints", "arcs", "guess", "solve",
 )  # fmt: skip
 """The order of the members in a document that the form writes."""
+
+
+def column_of(field: str) -> Column:
+    """The column that a field belongs to; that of the title for what is none."""
+    name, key = field.partition(".")[0], field.rpartition(".")[2]
+    columns = (column for section in SECTIONS if section.name == name for column in section.columns)
+    return next((column for column in columns if column.key == key), HEAD[0])

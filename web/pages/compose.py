@@ -13,7 +13,7 @@ from web import snippets
 from web.form.draft import FORM, JSON, Draft
 from web.form.filling import kept_back
 from web.form.reading import REST, field_of, rows
-from web.form.sections import HEAD, SECTIONS, Column, Kind, Section, Shape
+from web.form.sections import HEAD, SECTIONS, Column, Kind, Section, Shape, column_of
 from web.form.spoken import spoken
 from web.form.text_place import line_of, place_of
 from web.form.understood import understood
@@ -41,6 +41,7 @@ class Field:
     mathml: Markup
     long: bool  # the mathematics may be wider than its place: it scrolls, and the keyboard must reach it
     focus: bool
+    lines: int = 1  # of a text area
 
 
 @dataclass(frozen=True, slots=True)
@@ -158,8 +159,9 @@ def _placed(made: Complaint, text: str, given: Mapping[str, Any]) -> Complaint:
 
 def _concerned(draft: Draft, given: Mapping[str, Any], field: str) -> str:
     """The text that the span of a complaint counts in: a field, the formula in the JSON text, or that text itself."""
-    if draft.view == FORM:
-        return draft.fields.get(field, "")
+    shown = draft.fields.get(field, "")
+    if draft.view == FORM and column_of(field).kind not in (Kind.LINES, Kind.ENTRIES):
+        return shown
     pointer = str(given.get("pointer") or "")
     try:
         found = at(json.loads(draft.text), pointer)
@@ -227,4 +229,5 @@ def _field(column: Column, name: str, draft: Draft, by_field: Mapping[str, Seque
         mathml=understood(value) if column.kind is Kind.FORMULA else Markup(""),
         long=len(value) > LONG,
         focus=name == draft.focus,
+        lines=max(value.count("\n") + 1, 2) if column.kind in (Kind.LINES, Kind.ENTRIES) else 1,
     )

@@ -29,6 +29,7 @@ class Reading:
     sought_mathml: Markup
     unit: str
     independent: str
+    arcs: tuple[str, ...]
     unknowns: tuple[str, ...]
     freedom: str
     notes: tuple[str, ...]
@@ -43,6 +44,7 @@ def reading_view(reading: Mapping[str, Any]) -> Reading:
         sought_mathml=Markup(functional.get("mathml") or ""),
         unit=display.unit(str(functional.get("unit") or "")),
         independent=_independent(reading.get("independent") or {}),
+        arcs=tuple(str(arc.get("sentence", "")) for arc in reading.get("arcs") or ()),
         unknowns=tuple(str(unknown.get("sentence", "")) for unknown in reading.get("unknowns") or ()),
         freedom=str((reading.get("freedom") or {}).get("sentence", "")),
         notes=tuple(str(note) for note in reading.get("notes") or ()),

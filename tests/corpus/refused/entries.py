@@ -1,7 +1,8 @@
 """The documents that have to be refused: one table per stage, one JSON object per line.
 
 An entry has `name`, what is expected (`code`, `pointer`, and `marked`, the characters under the span), and the
-document: `body` as text, or `patch`, merged (RFC 7396) into the base document of that name in `bases.json`.
+document: `body` as text, or `patch`, merged (RFC 7396) into the base document of that name in `bases.json`, and `set`,
+values by JSON pointer, which reach into lists (a last step beyond the list appends).
 """
 
 import json
@@ -43,7 +44,21 @@ def merged(document, patch):
 def _body(entry) -> bytes:
     if "body" in entry:
         return entry["body"].encode()
-    return json.dumps(merged(BASES[entry["base"]], entry["patch"]), ensure_ascii=False).encode()
+    document = merged(BASES[entry["base"]], entry.get("patch", {}))
+    if "set" in entry:
+        document = json.loads(json.dumps(document))  # the base itself stays as it is
+    for pointer, value in entry.get("set", {}).items():
+        *way, last = pointer.split("/")[1:]
+        part = document
+        for step in way:
+            part = part[int(step)] if isinstance(part, list) else part.setdefault(step, {})
+        if not isinstance(part, list):
+            part[last] = value
+        elif int(last) < len(part):
+            part[int(last)] = value
+        else:
+            part.append(value)
+    return json.dumps(document, ensure_ascii=False).encode()
 
 
 def _long_documents():
