@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
-from tests.acceptance import controls, suites, variations
+from tests.acceptance import controls, hybrids, suites, variations
 from tests.acceptance.records import Case
 
-CATALOGUE: dict[str, Case] = {case.id: case for case in (*variations.CASES, *controls.CASES, *suites.CASES)}
+CATALOGUE: dict[str, Case] = {
+    case.id: case for case in (*variations.CASES, *controls.CASES, *hybrids.CASES, *suites.CASES)
+}
 """All cases by id, in order."""
 
 _STUCK = "y^2 (1 - y')^2 is flat wherever y = 0: the value comes out as 0, but the minimiser does not come to rest"

@@ -35,6 +35,7 @@ TAGS = frozenset(
         "parameter fit",
         "boundary value problem",
         "guess given",
+        "arcs",
     }
 )
 

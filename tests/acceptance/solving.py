@@ -88,13 +88,15 @@ def outcome_of(document: Path, figures: tuple[Figure, ...] = (), longest: float 
         if asked.place is None:
             found = solution.parameters.get(asked.subject)
             return None if found is None else found / parameter_factors[asked.subject]
-        if solution.curve is None:
+        curves = [solution.curve] if solution.curve is not None else [arc.curve for arc in solution.arcs]
+        if not curves:
             return None
-        place = solution.curve.breaks[-1] if asked.place == "end" else float(asked.place) * step
+        place = curves[-1].breaks[-1] if asked.place == "end" else float(asked.place) * step
+        curve = next(curve for curve in curves if place <= curve.breaks[-1] or curve is curves[-1])
         name = asked.subject.rstrip("'")
         primes = len(asked.subject) - len(name)
-        known = asked.subject in solution.curve.functions
-        value = solution.curve.evaluate(asked.subject if known else name, [place], 0 if known else primes)[0]
+        known = asked.subject in curve.functions
+        value = curve.evaluate(asked.subject if known else name, [place], 0 if known else primes)[0]
         return float(value) / factors[name] * step**primes
 
     def in_units(value: float | None) -> float | None:

@@ -7,7 +7,7 @@ import re
 
 import pytest
 
-from tests.acceptance import controls, suites, variations
+from tests.acceptance import controls, hybrids, suites, variations
 from tests.acceptance.catalogue import CATALOGUE, HARD, KNOWN_FAILURES
 from tests.acceptance.promises import owed
 from tests.acceptance.records import PROBLEMS, TAGS, Sort
@@ -16,7 +16,7 @@ EVERY_CASE = pytest.mark.parametrize("case", CATALOGUE.values(), ids=CATALOGUE)
 
 
 def test_ids_are_unique():
-    cases = (*variations.CASES, *controls.CASES, *suites.CASES)
+    cases = (*variations.CASES, *controls.CASES, *hybrids.CASES, *suites.CASES)
     assert len(CATALOGUE) == len(cases)
 
 

@@ -145,8 +145,8 @@ CASES = (
         figures=(at("y", 1, 1 / 8, 1e-6),),
     ),
     Case(
-        "A31", MIN, 2.781245361209085, 1e-5, "closed form: law of refraction, sin a1 = 1.5 sin a2", ("smooth",),
-        figures=(at("above", 1, 0.6231997970978063),),
+        "A31", MIN, 2.781245361209085, 1e-5, "closed form: law of refraction, sin a1 = 1.5 sin a2", ("corner", "arcs"),
+        figures=(parameter("X", 0.6231997970978063), at("y", 0.6231997970978063, 0.0)),
     ),
     Case(
         "A32a", MIN, 0.9890426109960732, 1e-7,
@@ -220,7 +220,12 @@ CASES = (
         ("corner", "several optima"),
     ),
     Case(
-        "A47", MIN, 2 * sqrt(2), 1e-6, "closed form: mirror image", ("corner", "way points"),
+        "A46b", MIN, 1.0, 1e-6,
+        "closed form: slopes 1, then -1 (corner condition: Erdmann, 1877); 1 is added to the integrand",
+        ("corner", "arcs"), figures=(parameter("c", 0.75), at("y", 0.5, 0.5), at("y'", 0.9, -1.0)),
+    ),
+    Case(
+        "A47", MIN, 2 * sqrt(2), 1e-6, "closed form: mirror image", ("corner", "arcs"),
         figures=(parameter("p", 1.0, 1e-4),),
     ),
     Case(

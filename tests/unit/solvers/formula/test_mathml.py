@@ -94,11 +94,18 @@ def test_a_total_derivative_is_an_operator():
 
 @pytest.mark.parametrize(("seek", "words"), [("minimum", "minimum of"), ("stationary", "stationary value of")])
 def test_the_functional_names_what_is_sought(seek, words):
-    markup = functional_mathml(seek, parse_expression("L"), parse_expression("x(T)"), "t", EXTENT.start, EXTENT.end)
+    markup = functional_mathml(seek, parse_expression("L"), parse_expression("x(T)"), EXTENT)
     assert " ".join(drawn(ET.fromstring(markup)).split()) == f"{words} x(T)+∫_{{0}}^{{T}}L dt"
     assert f'<annotation encoding="text/plain">{words} x(T) + integral(L)</annotation>' in markup
-    alone = functional_mathml(seek, None, parse_expression("T"), "t", EXTENT.start, EXTENT.end)
+    alone = functional_mathml(seek, None, parse_expression("T"), EXTENT)
     assert " ".join(drawn(ET.fromstring(alone)).split()) == f"{words} T"
+
+
+def test_integrals_over_parts_of_the_range_are_added_with_their_ends():
+    half = Range("t", EXTENT.start, Name("h"))
+    markup = functional_mathml("minimum", None, parse_expression("T"), EXTENT, [(parse_expression("L"), half)])
+    assert " ".join(drawn(ET.fromstring(markup)).split()) == "minimum of T+∫_{0}^{h}L dt"
+    assert "minimum of T + integral(L) from 0 to h" in markup
 
 
 def test_the_element_says_how_it_stands_and_keeps_its_source():
