@@ -36,6 +36,7 @@ def rejoin(beside: Beside, found: Solution) -> Solution:
         checks=tuple(_check(beside, check, places) for check in found.checks),
         diagnosis=None if found.diagnosis is None else _diagnosis(beside, found.diagnosis, places),
         notes=tuple(notes),
+        extremals=tuple(replace(one, solution=rejoin(beside, one.solution)) for one in found.extremals),
         switches=tuple(sorted(set(_switches(beside, found, places)), key=lambda switch: switch.place)),
     )
 
