@@ -6,14 +6,14 @@ places by a condition there; what depends on neither is looked at now.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator, Mapping
+from collections.abc import Callable, Iterable, Iterator, Mapping
 from dataclasses import dataclass, field, replace
 from typing import Any
 
 import numpy as np
 
 from service.assemble.domain import value_of
-from service.assemble.formulas import Formula, Formulas
+from service.assemble.formulas import Expression, Formula, Formulas
 from service.assemble.meaning import Meaning
 from service.assemble.names import Kind
 from service.assemble.orders import Reach, derivatives, reach_of
@@ -71,15 +71,17 @@ class _Use:
         return self.formula.complaint(self.argument.span, "outside-range", message, hint)
 
 
-def covered(problem: Problem, formulas: Formulas, meaning: Meaning, settle: Callable[[Node], Node]) -> Problem:
+Settle = Callable[[Node, Mapping[str, Expression] | None], Node]
+"""Brings a formula into the terms of the problem; the abbreviations are those of an arc, or None."""
+
+
+def covered(problem: Problem, formulas: Formulas, meaning: Meaning, settle: Settle) -> Problem:
     """The problem with the conditions on arguments.  Raises `Refused` (stage conditions)."""
+    if problem.arcs:
+        return _covered_arcs(problem, formulas, meaning, settle)
     cover = _Cover(problem, meaning, reach_of(problem.where))
-    known: set[tuple[str, int, Node]] = set()
-    for use in _uses(formulas):
-        key = (use.lookup.table.name, use.index, bare(use.argument))
-        if key not in known:
-            known.add(key)
-            cover.add(use, settle(use.argument))
+    for use in _uses(formulas.moving()):
+        cover.add(use, settle(use.argument, None))
     refuse(Stage.CONDITIONS, cover.complaints)
     return replace(
         problem,
@@ -88,8 +90,41 @@ def covered(problem: Problem, formulas: Formulas, meaning: Meaning, settle: Call
     )
 
 
-def _uses(formulas: Formulas) -> Iterator[_Use]:
-    for formula in formulas.moving():
+def _covered_arcs(problem: Problem, formulas: Formulas, meaning: Meaning, settle: Settle) -> Problem:
+    """The same on every arc, by the formulas that hold there."""
+    own = {formula.pointer for arc in formulas.arcs for formula in arc.running()}
+    everywhere = [formula for formula in formulas.moving() if formula.pointer not in own]
+    unknowns = {unknown.name for unknown in problem.unknowns}
+    arcs = []
+    at_places: dict[tuple[str, str], Condition] = {}
+    complaints: dict[tuple[str, str], Complaint] = {}
+    for arc, stated in zip(problem.arcs, formulas.arcs, strict=True):
+        part = problem.along(arc)
+        cover = _Cover(part, meaning, reach_of(part.where))
+        missing = unknowns - {unknown.name for unknown in arc.unknowns}
+        for use in _uses([*everywhere, *stated.running()]):
+            settled = settle(use.argument, {**formulas.where, **stated.where})
+            if not missing & {name for name, _ in derivatives([settled], cover.reach)}:
+                cover.add(use, settled)
+        arcs.append(replace(arc, constraints=(*arc.constraints, *cover.along)))
+        at_places |= {(condition.label, condition.pointer): condition for condition in cover.at_places}
+        complaints |= {(complaint.pointer, complaint.message): complaint for complaint in cover.complaints}
+    refuse(Stage.CONDITIONS, complaints.values())
+    return replace(problem, arcs=tuple(arcs), endpoints=(*problem.endpoints, *at_places.values()))
+
+
+def _uses(formulas: Iterable[Formula]) -> Iterator[_Use]:
+    """Each argument of each table once."""
+    known: set[tuple[str, int, Node]] = set()
+    for use in _all_uses(formulas):
+        key = (use.lookup.table.name, use.index, bare(use.argument))
+        if key not in known:
+            known.add(key)
+            yield use
+
+
+def _all_uses(formulas: Iterable[Formula]) -> Iterator[_Use]:
+    for formula in formulas:
         tree = formula.tree
         for part in tree.sides if isinstance(tree, Relation) else (tree,):
             for node in walk(part):
