@@ -43,7 +43,12 @@ class _Channel:
     shown: float = 0.0  # when the last event was kept
     pending: dict[str, Any] | None = None
     over: bool = False
-    bells: set[Callable[[], None]] = field(default_factory=set)
+    bells: set[Callable[[], None]] = field(default_factory=set)  # of those who follow
+    last_bells: set[Callable[[], None]] = field(default_factory=set)  # of those who only want to know of the end
+
+    @property
+    def listened(self) -> bool:
+        return bool(self.bells or self.last_bells)
 
     def keep(self, data: dict[str, Any]) -> None:
         self.number += 1
@@ -58,7 +63,7 @@ class _Channel:
 
     def trim(self) -> None:
         """Give back what hardly anybody will ask for."""
-        if self.over and not self.bells:
+        if self.over and not self.listened:
             while len(self.events) > _KEPT_AFTER_END:
                 self.events.popleft()
 
@@ -90,13 +95,13 @@ class Progress:
                 channel.flush()
                 channel.keep(data)
                 channel.trim()
-            bells = tuple(channel.bells) if ring else ()
+            bells = (*(channel.bells if ring else ()), *(channel.last_bells if channel.over else ()))
         for bell in bells:
             bell()
 
     async def follow(self, run: str, after: str | None = None) -> AsyncIterator[Event | None]:
         """The events after the one with the id `after`, to the end; None whenever nothing came for a while."""
-        with self._listening(run) as (channel, bell):
+        with self._listening(run, lambda channel: channel.bells) as (channel, bell):
             name, _, place = (after or "").rpartition(".")
             number = int(place) if name == channel.name and place.isdecimal() else 0
             while True:
@@ -118,13 +123,11 @@ class Progress:
 
     async def ended(self, run: str, seconds: float) -> bool:
         """Wait for the end of a run; False where it has not come in time."""
-        with self._listening(run) as (channel, bell):
+        with self._listening(run, lambda channel: channel.last_bells) as (channel, bell):
             with contextlib.suppress(TimeoutError):
                 async with asyncio.timeout(seconds):
-                    while not channel.over:
-                        bell.clear()
-                        if not channel.over:
-                            await bell.wait()
+                    if not channel.over:
+                        await bell.wait()
             return channel.over
 
     def _channel(self, run: str) -> _Channel:
@@ -133,7 +136,7 @@ class Progress:
         if channel is None:
             channel = self._channels[run] = _Channel()
             if len(self._channels) > _KEPT_RUNS:
-                idle = (name for name, other in self._channels.items() if not other.bells and other is not channel)
+                idle = (name for name, other in self._channels.items() if not other.listened and other is not channel)
                 if (oldest := next(idle, None)) is not None:
                     del self._channels[oldest]
         else:
@@ -141,7 +144,9 @@ class Progress:
         return channel
 
     @contextmanager
-    def _listening(self, run: str) -> Iterator[tuple[_Channel, asyncio.Event]]:
+    def _listening(
+        self, run: str, bells: Callable[[_Channel], set[Callable[[], None]]]
+    ) -> Iterator[tuple[_Channel, asyncio.Event]]:
         loop, event = asyncio.get_running_loop(), asyncio.Event()
 
         def bell() -> None:
@@ -150,10 +155,10 @@ class Progress:
 
         with self._lock:
             channel = self._channel(run)
-            channel.bells.add(bell)
+            bells(channel).add(bell)
         try:
             yield channel, event
         finally:
             with self._lock:
-                channel.bells.discard(bell)
+                bells(channel).discard(bell)
                 channel.trim()

@@ -132,4 +132,20 @@ def test_a_follower_that_leaves_is_forgotten(hub):
             await asyncio.wait_for(collect(hub), 0.05)
 
     asyncio.run(leave())
-    assert hub._channels["r"].bells == set()
+    assert not hub._channels["r"].listened
+
+
+def test_who_waits_for_the_end_is_woken_by_nothing_else(hub):
+    async def wait():
+        waiting = asyncio.create_task(hub.ended("r", 5))
+        await asyncio.sleep(0)
+        (bell,) = hub._channels["r"].last_bells
+        rung = []
+        hub._channels["r"].last_bells = {lambda: (rung.append(1), bell())}
+        for number in range(20):
+            hub.publish("r", {"kind": "mesh", "mesh": number})
+        assert not rung
+        hub.publish("r", END)
+        return rung, await waiting
+
+    assert asyncio.run(wait()) == ([1], True)
