@@ -18,6 +18,9 @@ from enum import StrEnum
 _ALPHABET = "23456789abcdefghjkmnpqrstuvwxyz"  # no look-alikes: addresses are read out and typed
 _LENGTH = 26  # 31^26 > 2^128
 
+LONGEST_SOUGHT = 200
+"""Characters of a text that is looked for in titles."""
+
 
 class State(StrEnum):
     """How far a run is."""

@@ -118,13 +118,28 @@ class Store:
             return None
         return zlib.decompress(row.document) if row.compressed else bytes(row.document)
 
-    def list(self, *, limit: int = 50, after: str | None = None, state: State | None = None) -> Page:
-        """Runs, the newest first, from the place where `after` points.  Raises CursorError."""
+    def list(
+        self,
+        *,
+        limit: int = 50,
+        after: str | None = None,
+        state: State | None = None,
+        verdict: str | None = None,
+        title: str = "",
+    ) -> Page:
+        """Runs, the newest first, from the place where `after` points.  Raises CursorError.
+
+        Only those in a state, with a verdict, with a text in their title (A to Z are the same in either case).
+        """
         query = _SELECT.order_by(runs.c.created.desc(), runs.c.id.desc()).limit(limit + 1)
         if after is not None:
             query = query.where(sql.tuple_(runs.c.created, runs.c.id) < sql.tuple_(*_read_cursor(after)))
         if state is not None:
             query = query.where(runs.c.state == state.value)
+        if verdict is not None:
+            query = query.where(runs.c.verdict == verdict)
+        if title:
+            query = query.where(runs.c.title.icontains(title, autoescape=True))
         with self._read() as connection:
             found = [_run(row) for row in connection.execute(query)]
         page = tuple(found[:limit])

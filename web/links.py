@@ -31,9 +31,9 @@ def compose(*, sample: str = "", run: str = "", view: str = "") -> str:
     return _with_query(COMPOSE, sample=sample, run=run, view=view)
 
 
-def runs(*, state: str = "", text: str = "", after: str = "") -> str:
-    """The list of runs: those in one state, with a text in the title, older than a cursor."""
-    return _with_query(RUNS, state=state, q=text, after=after)
+def runs(*, state: str = "", verdict: str = "", text: str = "", after: str = "") -> str:
+    """The list of runs: those in one state, with a verdict, with a text in the title, older than a cursor."""
+    return _with_query(RUNS, state=state, verdict=verdict, q=text, after=after)
 
 
 def run(run_id: str) -> str:

@@ -27,6 +27,9 @@ _MEANINGS = {
     "has no optimum.",
 }
 
+VERDICTS = tuple(_MEANINGS)
+"""All that a result may be called."""
+
 _REASONS = {
     "infeasible": ("No curve meets all conditions", "Loosen or drop one of these conditions and solve again."),
     "undefined": ("A formula is not defined where the search begins", ""),

@@ -5,7 +5,7 @@ from __future__ import annotations
 import json
 from dataclasses import asdict, replace
 from datetime import UTC, datetime
-from typing import Annotated, Any
+from typing import Annotated, Any, Literal
 from urllib.parse import parse_qsl
 
 from fastapi import APIRouter, Depends, Query
@@ -22,7 +22,8 @@ from service.resource import resource
 from service.results import shown_result
 from service.routes.check import reading_of
 from service.routes.needs import TheRun, TheServices
-from service.run import CursorError, Run, State
+from service.run import LONGEST_SOUGHT, CursorError, Run, State
+from service.schemas import Verdict
 from service.services import Services
 from service.sketches import sketches
 from web import display, links
@@ -119,17 +120,24 @@ async def _composer(request: Request, services: Services, draft: Draft) -> Respo
 def list_runs(
     services: TheServices,
     state: Annotated[State | None, Query()] = None,
+    verdict: Annotated[Verdict | Literal[""], Query()] = "",
+    q: Annotated[str, Query(max_length=LONGEST_SOUGHT)] = "",
     after: Annotated[str, Query(max_length=200)] = "",
 ) -> str:
-    """All runs, the newest first."""
+    """The runs that are wanted, the newest first."""
+    text = q.strip()
     try:
-        part = services.store.list(limit=RUNS_ON_A_PAGE, after=after or None, state=state)
+        part = services.store.list(
+            limit=RUNS_ON_A_PAGE, after=after or None, state=state, verdict=verdict or None, title=text
+        )
     except CursorError as error:
         raise Fault("parameters", f"after: {error}.") from None
     page = runs_page(
         _rows(part.runs),
         now=datetime.now(UTC),
         state=state.value if state else "",
+        verdict=verdict,
+        text=text,
         after=after,
         next_cursor=part.after or "",
     )

@@ -19,7 +19,8 @@ from service.openapi import PROBLEM_BODY, REFUSALS, failures, leading_on, shape
 from service.resource import has_result, resource
 from service.results import result_text
 from service.routes.needs import JsonBody, TheRun, TheServices, accepts
-from service.run import CursorError, State
+from service.run import LONGEST_SOUGHT, CursorError, State
+from service.schemas import Verdict
 from web import links
 
 IMMUTABLE = "private, max-age=31536000, immutable"
@@ -87,6 +88,10 @@ class Listing(BaseModel):
     limit: int = Field(50, ge=1, le=200, description="at most so many runs")
     after: str | None = Field(None, max_length=200, description="cursor, from the address of the next part")
     state: State | None = Field(None, description="only runs in this state")
+    verdict: Verdict | None = Field(None, description="only runs with this verdict")
+    title: str = Field(
+        "", max_length=LONGEST_SOUGHT, description="only runs with this text in their title; A to Z in either case"
+    )
 
 
 @router.get(
@@ -98,7 +103,7 @@ class Listing(BaseModel):
 def list_runs(request: Request, services: TheServices, listing: Annotated[Listing, Query()]) -> Response:
     """The newest first; `next` and the Link header (RFC 8288) lead on, also while new runs come in."""
     try:
-        page = services.store.list(limit=listing.limit, after=listing.after, state=listing.state)
+        page = services.store.list(**listing.model_dump())
     except CursorError as error:
         raise Fault("parameters", f"after: {error}.") from None
     following = None

@@ -93,6 +93,11 @@ def test_the_list_is_paged_and_filtered(client, line):
     assert line["links"]["page"] in client.get("/runs?state=finished").text
     assert line["links"]["page"] not in client.get("/runs?state=failed").text
     assert client.get("/runs?state=lost").status_code == 422
+    assert client.get("/runs?verdict=good").status_code == 422
+    found = client.get("/runs", params={"q": line["title"].upper(), "verdict": line["verdict"]}).text
+    assert line["links"]["page"] in found
+    assert line["links"]["page"] in client.get("/runs?q=&verdict=").text  # as the form sends it when it is empty
+    assert line["links"]["page"] not in client.get("/runs?q=no+such+title").text
     assert client.get("/runs?after=nonsense").status_code == 422
 
 

@@ -145,7 +145,30 @@ def test_the_list_can_be_limited_to_a_state(client, line):
     assert client.get(RUNS, params={"state": "stopped", "limit": 1}).json()["next"] is None
 
 
-@pytest.mark.parametrize("query", ["limit=0", "limit=1000", "limit=many", "state=lost", "after=nonsense", "filter=x"])
+def test_the_list_can_be_limited_to_a_verdict_and_a_title(client, line, post):
+    other = post({**LINE, "title": "A Very Different Title"}, prefer="wait=60").json()
+    found = client.get(RUNS, params={"title": "very different", "verdict": other["verdict"], "limit": 1}).json()
+    assert [run["id"] for run in found["runs"]] == [other["id"]]
+    assert client.get(RUNS, params={"title": "very different", "verdict": "infeasible"}).json()["runs"] == []
+    post({**LINE, "title": "a very different one"}, prefer="wait=60")
+    first = client.get(RUNS, params={"title": "very different", "limit": 1}).json()
+    assert "title=very+different" in first["next"]
+    assert [run["id"] for run in client.get(first["next"]).json()["runs"]] == [other["id"]]
+
+
+@pytest.mark.parametrize(
+    "query",
+    [
+        "limit=0",
+        "limit=1000",
+        "limit=many",
+        "state=lost",
+        "verdict=good",
+        f"title={'x' * 201}",
+        "after=nonsense",
+        "filter=x",
+    ],
+)
 def test_a_list_that_cannot_be_had_says_why(client, query):
     answer = client.get(f"{RUNS}?{query}")
     assert answer.status_code == 422

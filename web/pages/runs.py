@@ -1,14 +1,16 @@
-"""The list of runs: the newest first, by state, a page at a time."""
+"""The list of runs: the newest first, by state, verdict and title, a page at a time."""
 
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from datetime import UTC, datetime
+from functools import partial
 from typing import Any, ClassVar
 
 from web import display, links
 from web.pages.page import Page, told
+from web.verdicts import VERDICTS
 
 STATES = ("waiting", "solving", "finished", "failed", "stopped")
 
@@ -48,24 +50,42 @@ class RunsPage(Page):
 
     rows: tuple[RunRow, ...] = told("The runs of this page.")
     choices: tuple[Choice, ...] = told("Filters by state, the first is all.")
-    filtered: str = told("The state that the list is limited to, or empty.")
+    state: str = told("The state that the list is limited to, or empty.")
+    verdicts: tuple[str, ...] = told("Verdicts that the list can be limited to.")
+    verdict: str = told("The verdict that it is limited to, or empty.")
+    text: str = told("The text that titles have to hold, or empty.")
+    filtered: bool = told("Whether it is limited in any way.")
     older: str = told("Address of the next page, or empty.")
     newest: str = told("Address of the first page, or empty where this is it.")
 
 
 def runs_page(
-    runs: Sequence[Mapping[str, Any]], *, now: datetime, state: str = "", after: str = "", next_cursor: str = ""
+    runs: Sequence[Mapping[str, Any]],
+    *,
+    now: datetime,
+    state: str = "",
+    verdict: str = "",
+    text: str = "",
+    after: str = "",
+    next_cursor: str = "",
 ) -> RunsPage:
-    """The page for runs as the interface lists them (see `run_row`)."""
-    choices = [Choice("all", links.runs(), not state)]
-    choices += [Choice(name, links.runs(state=name), name == state) for name in STATES]
+    """The page for runs as the interface lists them (see `run_row`); each filter keeps the others."""
+    choices = [
+        Choice(name or "all", links.runs(state=name, verdict=verdict, text=text), name == state)
+        for name in ("", *STATES)
+    ]
+    same = partial(links.runs, state=state, verdict=verdict, text=text)
     return RunsPage(
         title="Runs",
         rows=tuple(run_row(run, now) for run in runs),
         choices=tuple(choices),
-        filtered=state,
-        older=links.runs(state=state, after=next_cursor) if next_cursor else "",
-        newest=links.runs(state=state) if after else "",
+        state=state,
+        verdicts=VERDICTS,
+        verdict=verdict,
+        text=text,
+        filtered=bool(state or verdict or text),
+        older=same(after=next_cursor) if next_cursor else "",
+        newest=same() if after else "",
     )
 
 

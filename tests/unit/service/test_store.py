@@ -275,6 +275,40 @@ def test_a_list_can_be_of_one_state(store):
     assert store.counts() == {**dict.fromkeys(State, 0), State.WAITING: 1, State.SOLVING: 1}
 
 
+def test_a_list_can_be_of_one_verdict(store):
+    accept(store, "first")
+    accept(store, "second")
+    (run,) = claim(store)
+    store.finish(run, b"{}", FIGURES)
+    assert [run.title for run in store.list(verdict="local minimum").runs] == ["first"]
+    assert store.list(verdict="infeasible").runs == ()
+
+
+@pytest.mark.parametrize(
+    ("sought", "titles"),
+    [
+        ("hose", ["A HOSE of 4 m", "hose"]),
+        ("100%", ["100% load"]),  # a sign that SQL would take for any text
+        ("a_b", ["a_b"]),
+        ("", ["axb", "a_b", "100% load", "A HOSE of 4 m", "hose"]),
+        ("'; drop table runs; --", []),
+    ],
+)
+def test_a_list_can_be_of_titles_with_a_text(store, sought, titles):
+    for title in ("hose", "A HOSE of 4 m", "100% load", "a_b", "axb"):
+        accept(store, title)
+    assert [run.title for run in store.list(title=sought).runs] == titles
+
+
+def test_a_list_of_some_is_read_page_by_page_too(store):
+    for number in range(9):
+        accept(store, f"{'hose' if number % 2 else 'chute'} {number}")
+    first = store.list(limit=3, title="hose")
+    second = store.list(limit=3, title="hose", after=first.after)
+    assert [run.title for run in (*first.runs, *second.runs)] == ["hose 7", "hose 5", "hose 3", "hose 1"]
+    assert second.after is None
+
+
 @pytest.mark.parametrize("cursor", ["", "x", "e30", "W10", "WzEsIDJd!", "WyJhIiwgImIiXQ", "ÿ"])
 def test_a_made_up_cursor_is_refused(store, cursor):
     with pytest.raises(CursorError, match="not a cursor of this list"):

@@ -32,7 +32,7 @@ def test_a_run_on_its_way_can_be_stopped_and_not_deleted():
 @pytest.mark.parametrize("state", ["", "failed"])
 def test_an_empty_list_says_so_and_leads_on(state):
     html = render(runs_page([], now=NOW, state=state))
-    assert ("No run is failed." in html) == bool(state)
+    assert ("No run is like that." in html) == bool(state)
     assert "<table" not in html
 
 
@@ -40,6 +40,20 @@ def test_pages_of_the_list_keep_the_filter():
     page = runs_page([FINISHED], now=NOW, state="finished", after="c1", next_cursor="c2")
     assert (page.older, page.newest) == ("/runs?state=finished&after=c2", "/runs?state=finished")
     assert [choice.label for choice in page.choices if choice.chosen] == ["finished"]
+
+
+def test_each_filter_keeps_the_others():
+    page = runs_page([FINISHED], now=NOW, state="finished", verdict="local minimum", text="a&b", next_cursor="c2")
+    assert page.older == "/runs?state=finished&verdict=local+minimum&q=a%26b&after=c2"
+    assert {choice.address for choice in page.choices if choice.label in ("all", "failed")} == {
+        "/runs?verdict=local+minimum&q=a%26b",
+        "/runs?state=failed&verdict=local+minimum&q=a%26b",
+    }
+    html = render(page)
+    assert 'name="q" value="a&amp;b"' in html
+    assert '<input type="hidden" name="state" value="finished">' in html
+    assert "<option selected>local minimum</option>" in html
+    assert html.count("selected") == 1
 
 
 def test_titles_are_escaped():
