@@ -13,6 +13,8 @@ _SENTENCES = {
     End.STOPPED: "The run was stopped. The best curve so far is kept.",
     End.UNBOUNDED: "The value runs away: within the conditions it can be made better without limit, so there is no "
     "optimum. A bound on an unknown or one more condition may be missing.",
+    End.TORN: "The curve degenerates: the better it gets, the nearer it comes to one that is no continuous function; "
+    "the value is approached but not attained.",
     End.FAILED: "No further progress was possible from any of the default guesses. A guess of your own, bounds on the "
     "unknowns or a simpler version of the problem may help.",
 }

@@ -67,9 +67,12 @@ def in_parametric_form(problem: Problem, sizes: Callable[[], dict[str, float]], 
     if any(unknown.order != 1 for unknown in problem.unknowns) or not names:
         return None
     form = _Homogeneous(problem.independent, names, dict(problem.where))
-    integrand, degree = form.of(problem.integrand)
-    degrees = [degree, *(form.of(node.arguments[0])[1] for c in problem.integrals for node in walk(c.body)
-                         if isinstance(node, Call) and node.function == "integral")]  # fmt: skip
+    try:
+        integrand, degree = form.of(problem.integrand)
+        degrees = [degree, *(form.of(node.arguments[0])[1] for c in problem.integrals for node in walk(c.body)
+                             if isinstance(node, Call) and node.function == "integral")]  # fmt: skip
+    except _OtherGrowthError:
+        return None
     if max(degrees) != 1:
         return None
     integrand = form.raised(integrand, 1 - degree)
@@ -119,6 +122,10 @@ def in_parametric_form(problem: Problem, sizes: Callable[[], dict[str, float]], 
     return Gauged(problem, changed, squared)
 
 
+class _OtherGrowthError(Exception):
+    """A tree grows with the slope in another way than a power does."""
+
+
 class _Homogeneous:
     """Trees in x, y(x), y'(x) rewritten in x(s), y(s), x'(s), y'(s), where y' becomes y'/x'."""
 
@@ -149,7 +156,10 @@ class _Homogeneous:
         return Product((tree, Power(self._slope, Number(float(power), str(power)))), (False, False))
 
     def of(self, tree: Node) -> tuple[Node, Fraction]:
-        """A tree h and a degree d with h = tree * x'^d, homogeneous in (x', y') of degree d, free of 1/x'."""
+        """A tree h and a degree d with h = tree * x'^d, homogeneous in (x', y') of degree d, free of 1/x'.
+
+        Raises _OtherGrowthError where there is none, as for exp(y').
+        """
         match tree:
             case Name(name=name, order=order) if name in self._unknowns and order == 1:
                 return tree, Fraction(1)
@@ -172,8 +182,17 @@ class _Homogeneous:
             case Call(function="sqrt", arguments=(inside,)):
                 inner, degree = self.of(inside)
                 return Call("sqrt", (inner,)), degree / 2
+            case Call(function="abs", arguments=(inside,)):
+                inner, degree = self.of(inside)
+                return Call("abs", (inner,)), degree
+            case Call(function="hypot", arguments=sides):
+                parts = [self.of(side) for side in sides]
+                degree = max(d for _, d in parts)
+                return Call("hypot", tuple(self.raised(part, degree - d) for part, d in parts)), degree
+            case _ if self._moves(tree):
+                raise _OtherGrowthError
             case _:
-                return self.plain(tree), Fraction(0)
+                return tree, Fraction(0)
 
     def _moves(self, tree: Node) -> bool:
         """Whether a tree, its abbreviations included, holds a derivative."""

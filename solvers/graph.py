@@ -13,9 +13,12 @@ from solvers.curve import Curve
 from solvers.gauge import Gauged
 from solvers.limits import number
 from solvers.regraph import regraph
-from solvers.solution import Check, Price
+from solvers.solution import Check, Finding, Price
 
 Array = NDArray[np.float64]
+
+MIDDLES = (np.arange(16) + 0.5) / 16
+"""Where every interval is looked at."""
 
 
 def as_graph(gauged: Gauged, shape: Curve, multipliers: Curve, factor: float) -> tuple[Curve, Curve]:
@@ -35,6 +38,32 @@ def as_graph(gauged: Gauged, shape: Curve, multipliers: Curve, factor: float) ->
         Curve(breaks, {name: graph.functions[name] for name in functions}),
         Curve(breaks, {name: graph.functions[f"costate {name}"] for name in costates}),
     )
+
+
+UPRIGHT = 1e-6
+"""Slope of x along the curve, relative to its mean, below which the curve stands upright."""
+LONG = 1e-2
+"""Least rise of an upright piece, relative to the extent of the unknown, that is more than a vertical tangent."""
+
+
+def uprights(gauged: Gauged, shape: Curve) -> tuple[Finding, ...]:
+    """The pieces along which an unknown changes while x stands still: a function of x jumps there."""
+    x = gauged.original.independent
+    edges = shape.breaks
+    at = (edges[:-1, None] + np.diff(edges)[:, None] * MIDDLES).ravel()
+    step = np.repeat(np.diff(edges), len(MIDDLES)) / len(MIDDLES)
+    forward = shape.evaluate(x + "'", at)
+    places = shape.evaluate(x, at)
+    still = forward <= UPRIGHT * abs(float(forward @ step)) / float(step.sum())
+    starts = np.flatnonzero(still & ~np.append(False, still[:-1]))
+    ends = np.flatnonzero(still & ~np.append(still[1:], False))
+    found = []
+    for name in (unknown.name for unknown in gauged.original.unknowns):
+        values = shape.evaluate(name, at)
+        for first, last in zip(starts, ends, strict=True):
+            if abs(values[last] - values[first]) > LONG * (float(np.ptp(values)) or 1.0):
+                found.append(Finding(name, "", None, float(places[first]), "jumps"))
+    return tuple(found)
 
 
 def _end(gauged: Gauged, place: int, found: float) -> float:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import dataclass, field, replace
 from enum import Enum
+from itertools import pairwise
 from typing import Any
 
 import numpy as np
@@ -18,7 +19,7 @@ from solvers.functions import Compiled, compile_problem
 from solvers.guess import guesses
 from solvers.ipopt import LEAST_SQUARES_MULTIPLIERS, Iterate, Minimum, Outcome, Start, minimise
 from solvers.layout import Layout, layout
-from solvers.lowering import lower
+from solvers.lowering import lower, primed
 from solvers.mesh import Mesh, interval, uniform
 from solvers.newton import stationary_point
 from solvers.problem import Problem, Seek
@@ -43,6 +44,10 @@ AIM = 0.1
 """The local error that a new mesh is made for, relative to the tolerance."""
 LEAST_GAIN = 0.05
 """How much of the last change of the value counts as its error at the least, however much the mesh has improved."""
+TORN_MESHES = 4
+"""So many meshes in a row ..."""
+TORN_ERROR = 0.05
+"""... with such an error at one place that hardly falls, although it is cut finer each time: the curve jumps there."""
 FLOOR = 1e-9
 """What the minimiser itself leaves open, relative to the size of the value."""
 
@@ -57,6 +62,7 @@ class End(Enum):
     STOPPED = "stopped"
     INFEASIBLE = "infeasible"
     UNBOUNDED = "unbounded"
+    TORN = "degenerates"  # the curve tends to one that jumps
     UNDEFINED = "undefined"
     FAILED = "no progress"
 
@@ -394,12 +400,31 @@ def _settled(pursuit: Pursuit) -> End | None:
     value_met = pursuit.value_met
     if value_met and errors[-1] <= tolerance and pursuit.curve_error <= tolerance:
         return End.CONVERGED
+    if len(errors) > TORN_MESHES and min(errors[-TORN_MESHES:]) > max(TORN_ERROR, 0.5 * errors[-TORN_MESHES - 1]):
+        pursuit.findings = _jump(pursuit)
+        if pursuit.findings:
+            return End.TORN
     stuck = len(errors) > 6 and min(errors[-6:]) > 0.3 * errors[-7]
     slow = len(errors) > 2 and min(errors[-2:]) > 0.5 * errors[-3] and pursuit.curve_error <= CURVE_ROOM * tolerance
     if value_met and (stuck or (slow and pursuit.value_met_before)):
         return End.SETTLED
     pursuit.value_met_before = value_met
     return None
+
+
+def _jump(pursuit: Pursuit) -> tuple[Finding, ...]:
+    """Which state jumps where: over an ever narrower interval at one place on each of the last meshes."""
+    edges = []
+    for path, found in zip(pursuit.paths[-TORN_MESHES:], pursuit.estimates[-TORN_MESHES:], strict=True):
+        worst = int(np.argmax(found.errors))
+        edges.append(path.breaks[worst : worst + 2])
+    if not all(after[0] >= before[0] - 1e-12 and after[1] <= before[1] + 1e-12 for before, after in pairwise(edges)):
+        return ()
+    inside = slice(*path.program.layout.first[worst : worst + 2])
+    rise = np.ptp(np.vstack([path.nodes[worst : worst + 2], path.states[inside]]), axis=0)
+    largest = int(np.argmax(rise / np.maximum(np.abs(path.states).max(axis=0), 1e-300)))
+    name = primed(pursuit.compiled.lowered.states[largest])
+    return (Finding(name, "", None, float(edges[-1].mean()), "jumps"),)
 
 
 def _limited(mesh: Mesh, old: Mesh, found: refinement.Estimate, points: int) -> Mesh | None:

@@ -74,7 +74,7 @@ class Finding:
 class Diagnosis:
     """Why there is no (full) result: `reason` is a stable word, `sentence` is for people."""
 
-    reason: str  # "infeasible", "undefined", "out of time", "stopped", "unbounded", "no progress", "points limit"
+    reason: str  # the value of an `End` that is neither converged nor settled
     sentence: str
     findings: tuple[Finding, ...] = ()
 

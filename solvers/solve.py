@@ -11,6 +11,7 @@ import numpy as np
 from solvers import checks
 from solvers.arc_guess import with_sketches
 from solvers.beside import side_by_side
+from solvers.checks import lower_bound
 from solvers.checks.redundancy import unambiguous
 from solvers.curve import Curve
 from solvers.deadline import Deadline, in_seconds
@@ -18,13 +19,13 @@ from solvers.diagnosis import diagnose
 from solvers.extremals import solve_from_starts
 from solvers.functions import compile_problem
 from solvers.gauge import Gauged, in_parametric_form
-from solvers.graph import as_graph, checks_on_graph, prices_of_original
+from solvers.graph import as_graph, checks_on_graph, prices_of_original, uprights
 from solvers.guess import guesses
 from solvers.layout import layout
 from solvers.lowering import lower
 from solvers.prices import prices
 from solvers.problem import Problem, Seek
-from solvers.pursuit import End, Pursuit, first_mesh, go_on, pursue
+from solvers.pursuit import FLOOR, End, Pursuit, first_mesh, go_on, pursue
 from solvers.rejoin import rejoin
 from solvers.scaling import find_scales
 from solvers.sharpen import sharpen
@@ -36,6 +37,8 @@ from solvers.verdict import judge
 
 EARLY = {End.INFEASIBLE: Verdict.INFEASIBLE, End.UNBOUNDED: Verdict.NO_OPTIMUM}
 """Verdicts that need no curve."""
+
+PROVED = (Verdict.GLOBAL_MINIMUM, Verdict.GLOBAL_MAXIMUM)
 
 SHARE = 0.6
 """Share of the remaining time that the search for switches may take."""
@@ -82,8 +85,8 @@ def _solve_once(problem: Problem, watch: Watch | None) -> Solution:
         gauged = in_parametric_form(problem, sizes, squared)
         if gauged is None or (squared and not gauged.squared):
             continue
-        pursuit = _in_given_form(gauged.problem, watch, deadline)
-        if pursuit.solved or pursuit.end in (End.STOPPED, End.TIME):
+        pursuit = _in_given_form(with_slacks(gauged.problem), watch, deadline)
+        if (pursuit.solved and pursuit.end is not End.TORN) or pursuit.end in (End.STOPPED, End.TIME):
             return _solution(problem, pursuit, gauged, began)
     return _solution(problem, _in_given_form(with_slacks(problem), watch, deadline), None, began)
 
@@ -94,7 +97,7 @@ def _in_given_form(problem: Problem, watch: Watch | None, deadline: Deadline) ->
     pursuit = pursue(problem, watch, deadline, meshes=3)
     if pursuit.solved and (pursuit.steps[-1].error or 0.0) <= NEARLY * problem.options.tolerance:
         pursuit = pursuit if pursuit.end is End.CONVERGED else go_on(pursuit, watch, deadline, 3)
-    if not pursuit.solved or pursuit.end in (End.CONVERGED, End.STOPPED, End.TIME):
+    if not pursuit.solved or pursuit.end in (End.CONVERGED, End.STOPPED, End.TIME, End.TORN):
         return pursuit
     room = min(SHARE * deadline.left, PATIENCE * (time.process_time() - began) + 1.0)
     sharp = sharpen(pursuit, watch, deadline.within(room))
@@ -132,6 +135,8 @@ def _sizes(problem: Problem) -> dict[str, float]:
 
 def _solution(problem: Problem, pursuit: Pursuit, gauged: Gauged | None, began: float) -> Solution:
     solved_at = time.perf_counter()
+    if gauged is not None and pursuit.solved:
+        pursuit = _with_uprights(pursuit, gauged)
     diagnosis = diagnose(pursuit)
     times = {"solve": solved_at - began}
     if not pursuit.solved:
@@ -147,6 +152,9 @@ def _solution(problem: Problem, pursuit: Pursuit, gauged: Gauged | None, began: 
     curve_error = pursuit.curve_error if np.isfinite(pursuit.curve_error) else None
     made = checks.run(path, original=problem, value_error=value_error_or_none, curve_error=curve_error)
     verdict = judge(problem.seek, made, pursuit.end)
+    if verdict in PROVED and (gap := lower_bound.gap(made)) is not None:  # the bound says it better than the meshes
+        value_error = min(value_error, gap * pursuit.value_size + FLOOR * abs(path.program.value_scale))
+        value_error_or_none, diagnosis = value_error, None
     shape, multipliers, bought = curve(path), costate_curve(path), prices(path)
     if gauged is not None:
         root = float(np.sqrt(value)) if gauged.squared else 1.0
@@ -172,8 +180,18 @@ def _solution(problem: Problem, pursuit: Pursuit, gauged: Gauged | None, began: 
         iterations=pursuit.iterations,
         times=times | {"checks": time.perf_counter() - solved_at},
         notes=tuple(_notes(problem, pursuit, gauged)),
-        switches=tuple(SwitchPlace(switch.place, switch.of) for switch in present_switches(pursuit.paths[-1])),
+        switches=_switches(pursuit, gauged),
     )
+
+
+def _switches(pursuit: Pursuit, gauged: Gauged | None) -> tuple[SwitchPlace, ...]:
+    """Where controls switch, on the problem's own independent variable."""
+    path = pursuit.paths[-1]
+    found = present_switches(path)
+    places = np.array([switch.place for switch in found])
+    if gauged is not None and found:
+        places = curve(path).evaluate(gauged.original.independent, places)
+    return tuple(SwitchPlace(float(place), switch.of) for place, switch in zip(places, found, strict=True))
 
 
 def _about_switches(problem: Problem, found: Solution) -> str:
@@ -183,6 +201,14 @@ def _about_switches(problem: Problem, found: Solution) -> str:
     unit = f" {problem.independent_unit.text}" if problem.independent_unit.text else ""
     listed = ", ".join(f"{switch.place / problem.independent_unit.factor:.9g}" for switch in found.switches)
     return f"Switches were found and made unknowns of the problem: {problem.independent} = {listed}{unit}."
+
+
+def _with_uprights(pursuit: Pursuit, gauged: Gauged) -> Pursuit:
+    """A pursuit in parametric form whose curve rises straight up somewhere ends torn: as a function it jumps there."""
+    found = uprights(gauged, curve(pursuit.paths[-1]))
+    if found and pursuit.end in (End.CONVERGED, End.SETTLED):
+        return replace(pursuit, end=End.TORN, findings=found)
+    return pursuit
 
 
 def _notes(problem: Problem, pursuit: Pursuit, gauged: Gauged | None) -> list[str]:

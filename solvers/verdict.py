@@ -2,14 +2,15 @@
 
 Feasibility and first order come first: without them nothing else counts.  Then the necessary conditions of second
 order can refute the sort of extremum that was sought; sufficient ones can establish it, near the curve (second
-variation) or everywhere (convexity).
+variation) or everywhere (convexity).  A value that no curve can better, by the range of the integrand, needs none of
+these.  Feasible curves that tend to none that is continuous have no optimum.
 """
 
 from __future__ import annotations
 
 from collections.abc import Sequence
 
-from solvers.checks import FEASIBLE, FIRST_ORDER, convexity, curvature, legendre
+from solvers.checks import FEASIBLE, FIRST_ORDER, convexity, curvature, growth, legendre, lower_bound, weierstrass
 from solvers.problem import Seek
 from solvers.pursuit import End
 from solvers.solution import Check, Status, Verdict
@@ -37,14 +38,20 @@ def judge(seek: Seek, checks: Sequence[Check], end: End = End.CONVERGED) -> Verd
 
     if not holds(FEASIBLE):
         return Verdict.NOT_VERIFIED
+    if end is End.TORN:  # feasible curves, each better than the one before, tend to none
+        return Verdict.NO_OPTIMUM
+    if status.get(lower_bound.NAME) is Status.PASSED:  # no curve is better, however this one was found
+        return _WORDS[seek][0]
     if end not in (End.CONVERGED, End.SETTLED):
         return Verdict.BEST_FOUND
     if not holds(FIRST_ORDER):
         return Verdict.NOT_VERIFIED
+    if status.get(growth.NAME) is Status.FAILED and status.get(convexity.NAME) is not Status.PASSED:
+        return Verdict.NOT_VERIFIED
     if seek is Seek.STATIONARY:
         return Verdict.STATIONARY
     everywhere, nearby, refuted = _WORDS[seek]
-    if not holds((legendre.NAME, curvature.NAME)):
+    if not holds((legendre.NAME, weierstrass.NAME, curvature.NAME)):
         return refuted
     if status.get(convexity.NAME) is Status.PASSED:
         return everywhere

@@ -7,11 +7,11 @@ from typing import Any
 
 _MEANINGS = {
     "global minimum": "No admissible curve gives a smaller value: the problem is convex over the region of its bounds, "
-    "and every check that applies has passed.",
+    "or the value is the least that the integrand allows.",
     "local minimum": "No neighbouring curve gives a smaller value: the first- and second-order conditions hold. "
     "A better curve far from this one is not ruled out.",
     "global maximum": "No admissible curve gives a greater value: the problem is concave over the region of its "
-    "bounds, and every check that applies has passed.",
+    "bounds, or the value is the greatest that the integrand allows.",
     "local maximum": "No neighbouring curve gives a greater value: the first- and second-order conditions hold. "
     "A better curve far from this one is not ruled out.",
     "stationary": "To first order no small change of the curve changes the value. Whether the value is least, greatest "
@@ -36,6 +36,10 @@ _REASONS = {
     "out of time": ("The time limit ended the search", ""),
     "stopped": ("Stopped before the end", "Edit the problem or solve it again as it is."),
     "unbounded": ("The value runs away", ""),
+    "degenerates": (
+        "The curve degenerates",
+        "A limit on the slope, or a cost that grows faster with it, keeps it whole.",
+    ),
     "no progress": ("The search got stuck", ""),
     "points limit": ("The mesh reached its limit before the tolerance", ""),
     "failed": (
@@ -53,6 +57,10 @@ _CHECKS = {
     "stationarity": "Euler-Lagrange or costate equations off the nodes",
     "free ends": "transversality and natural boundary conditions",
     "first integral": "what must stay constant along the curve",
+    "corners": "the Hamiltonian on both sides of every corner (Weierstrass, Erdmann)",
+    "Weierstrass": "other values of the controls, however far (excess function)",
+    "lower bound": "the least that the integrand can be, by interval arithmetic",
+    "slope growth": "whether a slope grows without bound, where curves of bounded slope may miss the best value",
     "Legendre": "sign of the second derivative in the free controls",
     "conjugate points": "second variation over the whole curve",
     "convexity": "joint convexity over the region of the bounds",

@@ -12,14 +12,18 @@ import numpy as np
 from solvers.checks import (
     conditions,
     convexity,
+    corners,
     curvature,
     first_integral,
     free_ends,
+    growth,
     legendre,
     limits,
+    lower_bound,
     motion,
     refinement,
     stationarity,
+    weierstrass,
 )
 from solvers.checks.sampling import Sampler
 from solvers.deadline import Deadline
@@ -29,19 +33,20 @@ from solvers.solution import Check, Status
 from solvers.trajectory import Trajectory
 
 NAMES = (motion.NAME, limits.NAME, conditions.NAME, stationarity.NAME, free_ends.NAME, first_integral.NAME,
-         legendre.NAME, curvature.NAME, convexity.NAME, refinement.NAME)  # fmt: skip
+         corners.NAME, legendre.NAME, weierstrass.NAME, curvature.NAME, convexity.NAME, lower_bound.NAME, growth.NAME,
+         refinement.NAME)  # fmt: skip
 """The names of all checks in the order in which they are made and shown."""
 
 FEASIBLE = (motion.NAME, limits.NAME, conditions.NAME)
 """The checks that look at what the problem demands of any curve."""
 
-FIRST_ORDER = (stationarity.NAME, free_ends.NAME, first_integral.NAME, refinement.NAME)
+FIRST_ORDER = (stationarity.NAME, free_ends.NAME, first_integral.NAME, corners.NAME, refinement.NAME)
 """The checks of what every extremum has."""
 
-INSTANT = (convexity.NAME, refinement.NAME)
-"""The checks that look at no curve and take no time."""
+INSTANT = (convexity.NAME, lower_bound.NAME, growth.NAME, refinement.NAME)
+"""The checks that take no time, most of them as they look at no curve."""
 
-OPTIONAL = (legendre.NAME, curvature.NAME, convexity.NAME)
+OPTIONAL = (legendre.NAME, weierstrass.NAME, curvature.NAME, convexity.NAME, lower_bound.NAME)
 """The checks that only refine what the others have shown."""
 
 
@@ -84,9 +89,13 @@ def run(
         (stationarity.NAME, lambda: stationarity.check(sampler)),
         (free_ends.NAME, lambda: free_ends.check(sampler)),
         (first_integral.NAME, lambda: first_integral.check(sampler)),
+        (corners.NAME, lambda: corners.check(sampler)),
         (legendre.NAME, lambda: legendre.check(sampler)),
+        (weierstrass.NAME, lambda: weierstrass.check(sampler)),
         (curvature.NAME, of_second_order),
         (convexity.NAME, lambda: convexity.check(original or sampler.problem)),
+        (lower_bound.NAME, lambda: lower_bound.check(sampler)),
+        (growth.NAME, lambda: growth.check(sampler)),
         (refinement.NAME, lambda: refinement.check(value_error, size + floor / tolerance, curve_error, tolerance)),
     )
     with np.errstate(all="ignore"):

@@ -48,7 +48,7 @@ def obstacles(problem: Problem) -> Iterator[str]:
     if not first < last:
         yield f"{problem.independent} runs backwards"
         return
-    leaf, unfold = _known(problem, constants, first, last), _unfolding(problem)
+    leaf, unfold = known(problem, constants, first, last), unfolding(problem)
 
     def shape(tree: Node) -> Shape:
         return shape_of(tree, leaf, unfold)
@@ -68,7 +68,7 @@ def obstacles(problem: Problem) -> Iterator[str]:
             yield f"'{condition.label}' does not bound a convex set, as far as the rules of composition reach"
 
 
-def _known(problem: Problem, constants: dict[str, float], first: float, last: float) -> Leaf:
+def known(problem: Problem, constants: dict[str, float], first: float, last: float) -> Leaf:
     """What is known of each name: whether it is given, and where its values lie."""
     ranges: dict[tuple[str, int], tuple[float, float]] = {(u.name, 0): (u.lower, u.upper) for u in problem.unknowns}
     for condition in problem.constraints:
@@ -94,7 +94,7 @@ def _narrowed(condition: Condition, constants: dict[str, float], low: float, hig
     return max(low, least), min(high, most)
 
 
-def _unfolding(problem: Problem) -> Unfold:
+def unfolding(problem: Problem) -> Unfold:
     abbreviations = dict(problem.where)
 
     def unfold(tree: Node) -> Node:

@@ -10,22 +10,16 @@ CATALOGUE: dict[str, Case] = {
 }
 """All cases by id, in order."""
 
-_STUCK = "y^2 (1 - y')^2 is flat wherever y = 0: the value comes out as 0, but the minimiser does not come to rest"
 _RELAXED = "the minimum has corners at places that are free to choose; the search ends at the smooth stationary line"
-_LAVRENTIEV = "polynomials of any degree stay above the infimum, which only a curve of unbounded slope has"
 
 _WHERE_LIMITS_END = (
     "where the limit begins and ceases to bind the multiplier is found to three digits only: stationarity just fails"
 )
 
 KNOWN_FAILURES: dict[tuple[str, str], str] = {
-    ("A45", "error"): _STUCK,
-    ("A45", "verdict"): _STUCK,
     ("A46", "value"): _RELAXED,
     ("A46", "error"): _RELAXED,
     ("A46", "verdict"): _RELAXED,
-    ("A53", "value"): _LAVRENTIEV,
-    ("A53", "error"): _LAVRENTIEV,
     ("A56a", "verdict"): "the tip of the fin is singular, and the second variation is not decided there",
     ("B04a", "verdict"): _WHERE_LIMITS_END,
     ("B06", "verdict"): "switches without end: no mesh has them all, so the refinement does not settle",
@@ -34,7 +28,6 @@ KNOWN_FAILURES: dict[tuple[str, str], str] = {
 """Promises that are not kept yet: (case, promise) -> reason.  A promise is "value", "error", "verdict" or "figures"."""
 
 HARD: dict[str, str] = {
-    "A17": "no minimiser: meshes narrow towards the axis until the time is over",
     "A20b": "every rotation of the starting place does as well: meshes come slowly to agree",
     "A54": "the section vanishes at both ends, where the second derivative is singular: many narrow meshes",
     "A56b": "the tip of the fin is singular: the minimiser takes many steps on a narrow mesh",

@@ -50,10 +50,12 @@ class Sort(Enum):
     UNBOUNDED = frozenset({Verdict.NO_OPTIMUM, Verdict.NOT_A_MINIMUM})
     NOT_ATTAINED = frozenset({Verdict.NO_OPTIMUM, Verdict.NOT_A_MINIMUM, Verdict.NOT_VERIFIED, Verdict.BEST_FOUND})
 
+    GAP = frozenset({Verdict.NO_OPTIMUM, Verdict.NOT_VERIFIED})  # curves of bounded slope stay away from the infimum
+
     @property
     def attained(self) -> bool:
-        """True where some curve has the published value."""
-        return self not in (Sort.UNBOUNDED, Sort.NOT_ATTAINED)
+        """True where some curve of bounded slope comes as near to the published value as one likes, and one has it."""
+        return self not in (Sort.UNBOUNDED, Sort.NOT_ATTAINED, Sort.GAP)
 
 
 @dataclass(frozen=True, slots=True)

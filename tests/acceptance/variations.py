@@ -254,8 +254,9 @@ CASES = (
         ("no minimiser",),
     ),
     Case(
-        "A53", MIN, 0.0, 1e-6,
-        "closed form: y = x^(1/3); Mania (1934); Cesari (1983), Optimization: Theory and Applications, sec. 18.5",
+        "A53", Sort.GAP, 0.0, 1e-6,
+        "closed form: infimum 0 of y = x^(1/3), with a gap to curves of bounded slope; Mania (1934); Cesari (1983), "
+        "Optimization: Theory and Applications, sec. 18.5",
         ("singular endpoint", "several optima"),
     ),
     Case(

@@ -32,6 +32,10 @@ LINEAR = [
     "slope*x + ds/y",
     "(1 + y'^4)^(1/4)",
     "sqrt(1 + (y' - z')^2)*hypot(x, y)",
+    "hypot(1, y')*y",
+    "y*hypot(y', 2)",
+    "abs(y') + x",
+    "abs(x*y' - y)",
 ]
 
 
@@ -87,6 +91,8 @@ def test_the_form_in_s_lives_on_vertical_tangents(integrand):
         "1/(1 + y'^2)",
         "y*exp(-y')",
         "y'^2 + sqrt(1 + y'^2)",
+        "sqrt(1 + y'^2) + exp(y')",
+        "sqrt(1 + y'^2)*sin(y')",
     ],
 )
 def test_other_growth_stays_as_it_is(integrand):

@@ -6,8 +6,8 @@ from numpy.polynomial import legendre
 
 from solvers.curve import Curve
 from solvers.gauge import in_parametric_form
-from solvers.graph import as_graph, checks_on_graph, prices_of_original
-from solvers.solution import Check, Price, Status
+from solvers.graph import as_graph, checks_on_graph, prices_of_original, uprights
+from solvers.solution import Check, Finding, Price, Status
 from tests.unit.solvers.problems import shape
 
 GAUGED = in_parametric_form(shape(endpoints=["y(0) = 0", "y(3) = 1"]), lambda: {"x": 1.0, "y": 1.0}, squared=True)
@@ -51,3 +51,16 @@ def test_checks_move_to_x():
 def test_only_what_the_user_stated_has_a_price():
     prices = (Price("y(0) = 0", "/endpoints/0", 3.0), Price("constant speed along the curve", "", 9.0))
     assert prices_of_original(prices, 0.5) == (Price("y(0) = 0", "/endpoints/0", 1.5),)
+
+
+def test_upright_pieces_are_jumps_of_the_function():
+    """Down beside x = 0, along the axis, up beside x = 3: the film that tears (Goldschmidt, 1831; from memory)."""
+    stairs = {"x": lambda s: np.where(s < 0.5, 0 * s, 6 * s - 3), "x_": lambda s: np.where(s < 0.5, 0 * s, 6 + 0 * s)}
+    torn = fitted(**stairs, y=lambda s: np.where(s < 0.5, 1 - 2 * s, 0 * s), y_=lambda s: np.where(s < 0.5, -2.0, 0.0))
+    assert uprights(GAUGED, torn) == (Finding("y", "", None, 0.0, "jumps"),)
+
+
+def test_a_vertical_tangent_is_no_jump():
+    assert uprights(GAUGED, PARABOLA) == ()
+    flat = fitted(x=lambda s: 3 * s**3, x_=lambda s: 9 * s**2, y=lambda s: s, y_=lambda s: 1 + 0 * s)
+    assert uprights(GAUGED, flat) == ()

@@ -77,6 +77,48 @@ def test_of_two_soap_films_the_stable_one_is_found():
     assert solution.value < 1.5 + np.sinh(3.0) / 2 - 0.04
 
 
+def test_rings_too_far_apart_let_the_film_go():
+    """No film beyond the distance 1.32549 of rings of radius one; two discs, 2 pi, the infimum (Goldschmidt, 1831)."""
+    rings = {
+        "independent": {"name": "x", "from": -0.7, "to": 0.7},
+        "unknowns": {"y": {"within": [0, None]}},
+        "functional": {"integrand": "2*pi*y*sqrt(1 + y'^2)"},
+        "endpoints": ["y(-0.7) = 1", "y(0.7) = 1"],
+    }
+    solution = solve(shape(**rings))
+    assert solution.verdict is Verdict.NO_OPTIMUM
+    assert solution.value == pytest.approx(2 * np.pi, rel=1e-9)
+    assert solution.diagnosis.reason == "degenerates"
+    assert [(f.label, round(f.place, 6)) for f in solution.diagnosis.findings] == [("y", -0.7), ("y", 0.7)]
+
+
+def test_a_curve_that_tends_to_a_jump_has_no_optimum():
+    """x^2 y'^2 (Weierstrass, 1870; from memory): the value tends to 0 as y tends to a step at 0."""
+    step = {
+        "independent": {"name": "x", "from": -1, "to": 1},
+        "functional": {"integrand": "x^2*y'^2"},
+        "endpoints": ["y(-1) = -1", "y(1) = 1"],
+    }
+    solution = solve(shape(**step))
+    assert solution.verdict is Verdict.NO_OPTIMUM
+    (finding,) = solution.diagnosis.findings
+    assert finding.label == "y"
+    assert abs(finding.place) < 1e-3
+
+
+def test_a_value_that_no_curve_can_better_is_the_least_of_all():
+    """y = max(0, x) has slopes 0 and 1 (Bolza, 1904; from memory); where y is zero the minimiser finds no rest."""
+    broken = {
+        "independent": {"name": "x", "from": -1, "to": 1},
+        "functional": {"integrand": "y^2*(1 - y')^2"},
+        "endpoints": ["y(-1) = 0", "y(1) = 1"],
+    }
+    solution = solve(shape(**broken))
+    assert solution.verdict is Verdict.GLOBAL_MINIMUM
+    assert 0 <= solution.value <= solution.value_error < 1e-6
+    assert solution.diagnosis is None
+
+
 @pytest.mark.parametrize(
     "members, verdict, reason",
     [
