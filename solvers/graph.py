@@ -40,10 +40,9 @@ def as_graph(gauged: Gauged, shape: Curve, multipliers: Curve, factor: float) ->
     )
 
 
-UPRIGHT = 1e-6
-"""Slope of x along the curve, relative to its mean, below which the curve stands upright."""
-LONG = 1e-2
-"""Least rise of an upright piece, relative to the extent of the unknown, that is more than a vertical tangent."""
+UPRIGHT = ((1e-6, 1e-2), (1e-3, 0.1))
+"""A curve stands upright where the slope of x along it, relative to its mean, stays below the first number over a rise,
+relative to the extent of the unknown, of more than the second: more than a vertical tangent has (x = y^3: 0.03)."""
 
 
 def uprights(gauged: Gauged, shape: Curve) -> tuple[Finding, ...]:
@@ -54,16 +53,21 @@ def uprights(gauged: Gauged, shape: Curve) -> tuple[Finding, ...]:
     step = np.repeat(np.diff(edges), len(MIDDLES)) / len(MIDDLES)
     forward = shape.evaluate(x + "'", at)
     places = shape.evaluate(x, at)
-    still = forward <= UPRIGHT * abs(float(forward @ step)) / float(step.sum())
-    starts = np.flatnonzero(still & ~np.append(False, still[:-1]))
-    ends = np.flatnonzero(still & ~np.append(still[1:], False))
-    found = []
-    for name in (unknown.name for unknown in gauged.original.unknowns):
-        values = shape.evaluate(name, at)
-        for first, last in zip(starts, ends, strict=True):
-            if abs(values[last] - values[first]) > LONG * (float(np.ptp(values)) or 1.0):
-                found.append(Finding(name, "", None, float(places[first]), "jumps"))
-    return tuple(found)
+    mean = abs(float(forward @ step)) / float(step.sum())
+    for slope, rise in UPRIGHT:
+        still = np.concatenate([[False], forward <= slope * mean, [False]])
+        pieces = list(
+            zip(np.flatnonzero(still[1:-1] & ~still[:-2]), np.flatnonzero(still[1:-1] & ~still[2:]), strict=True)
+        )
+        found = []
+        for unknown in gauged.original.unknowns:
+            values = shape.evaluate(unknown.name, at)
+            least = rise * (float(np.ptp(values)) or 1.0)
+            found += [Finding(unknown.name, "", None, float(places[first]), "jumps") for first, last in pieces
+                      if abs(values[last] - values[first]) > least]  # fmt: skip
+        if found:
+            return tuple(found)
+    return ()
 
 
 def _end(gauged: Gauged, place: int, found: float) -> float:

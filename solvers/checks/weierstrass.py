@@ -16,7 +16,8 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-from solvers.checks.sampling import Sampler, mapped
+from solvers.checks.sampling import Sampler
+from solvers.evaluation import mapped
 from solvers.limits import constants_of, interval_of
 from solvers.solution import Check, Status
 

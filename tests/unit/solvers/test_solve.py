@@ -87,9 +87,9 @@ def test_rings_too_far_apart_let_the_film_go():
     }
     solution = solve(shape(**rings))
     assert solution.verdict is Verdict.NO_OPTIMUM
-    assert solution.value == pytest.approx(2 * np.pi, rel=1e-9)
+    assert solution.value == pytest.approx(2 * np.pi, rel=1e-7)
     assert solution.diagnosis.reason == "degenerates"
-    assert [(f.label, round(f.place, 6)) for f in solution.diagnosis.findings] == [("y", -0.7), ("y", 0.7)]
+    assert [(f.label, round(f.place, 3)) for f in solution.diagnosis.findings] == [("y", -0.7), ("y", 0.7)]
 
 
 def test_a_curve_that_tends_to_a_jump_has_no_optimum():
