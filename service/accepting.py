@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from hashlib import sha256
 
+from service.engine.records import packed
 from service.errors import Fault
 from service.run import Run, new_run
 from service.services import Services
@@ -20,7 +21,7 @@ def accept(services: Services, body: bytes, key: str | None = None) -> tuple[Run
     from service.spec import read
 
     document = read(body)
-    assemble(document)
+    problem = assemble(document)
     services.check_room()
     run = new_run(
         document.title,
@@ -29,7 +30,7 @@ def accept(services: Services, body: bytes, key: str | None = None) -> tuple[Run
         key=key,
         key_hash=None if key is None else sha256(body).hexdigest(),
     )
-    kept = services.dispatcher.submit(run, body.decode("utf-8-sig"))
+    kept = services.dispatcher.submit(run, body.decode("utf-8-sig"), packed((document, problem)))
     return kept, kept.id == run.id
 
 

@@ -82,16 +82,17 @@ class Dispatcher:
 
     # For the routes
 
-    def submit(self, run: Run, document: str) -> Run:
+    def submit(self, run: Run, document: str, assembled: bytes = b"") -> Run:
         """Accept a run for good; the run that came earlier with the same idempotency key, where there is one.
 
+        `assembled` is what the worker would make of the document, packed: it spares that where a slot is free.
         Raises IdempotencyError, QueueFullError, StoreError.
         """
         with self._feeding:
             if self._owner is not None and not self._backlog and self._room():
                 lease = time.time() + self._settings.lease_seconds
                 claimed = replace(run, state=State.SOLVING, attempt=1, owner=self._owner.name, lease=lease)
-                return self._begin(claimed, document)
+                return self._begin(claimed, document, assembled)
             accepted = self._store.accept(run, document, queue=self._settings.queue)
             if accepted.id == run.id:
                 self._progress.publish(run.id, {"kind": "state", "state": State.WAITING.value})
@@ -167,14 +168,14 @@ class Dispatcher:
 
     # Inside
 
-    def _begin(self, run: Run, document: str) -> Run:
+    def _begin(self, run: Run, document: str, assembled: bytes) -> Run:
         """Accept a claimed run.  Its worker starts while the disk is still busy; nobody is told before that is done."""
         if run.key is not None:  # maybe an earlier run is meant: look first
             accepted = self._store.accept(run, document)
             if accepted.id == run.id:
-                self._hand_over(run, document)
+                self._hand_over(run, document, assembled)
             return accepted
-        self._hand_over(run, document)
+        self._hand_over(run, document, assembled)
         try:
             return self._store.accept(run, document)
         except BaseException:
@@ -264,7 +265,7 @@ class Dispatcher:
                 if document is not None:  # else it was deleted this moment
                     self._hand_over(run, document)
 
-    def _hand_over(self, run: Run, document: str) -> None:
+    def _hand_over(self, run: Run, document: str, assembled: bytes = b"") -> None:
         """Give a claimed run to the engine."""
         if run.cancel_asked:
             self._write(run, partial(self._settle, run, Outcome(Ending.STOPPED)))
@@ -275,8 +276,8 @@ class Dispatcher:
         self._engine.submit(
             Job(
                 run.id,
-                document.encode(),
-                {"id": run.id, "time_limit": seconds},
+                assembled or document.encode(),
+                {"id": run.id, "time_limit": seconds, "assembled": bool(assembled)},
                 attempt=run.attempt,
                 priority=run.priority,
                 created=run.created,

@@ -1,4 +1,4 @@
-"""What a worker does with a run: read, assemble, solve, write the result document.
+"""What a worker does with a run: read, assemble (where the server has not), solve, write the result document.
 
 Imports the solver with CasADi: for workers and for `curvewright solve`, never for the web process.
 """
@@ -7,6 +7,7 @@ from __future__ import annotations
 
 import json
 import math
+import pickle
 import time
 import traceback
 from collections.abc import Callable, Mapping
@@ -40,7 +41,19 @@ def perform(
     """
     began = time.perf_counter()
     document = read(document_text.encode())
-    problem = assemble(document)
+    return _performed(document, assemble(document), report, stop, id, longest, began)
+
+
+def _performed(
+    document: Document,
+    problem: Problem,
+    report: Report,
+    stop: Stop,
+    id: str | None,
+    longest: float,
+    began: float,
+) -> dict[str, Any]:
+    """The result document of an assembled problem; `began` is when reading it did."""
     limit = min(problem.options.time_limit, longest)
     problem = replace(problem, options=replace(problem.options, time_limit=limit))
     ready = time.perf_counter()
@@ -66,8 +79,17 @@ def perform(
 
 
 def solve(head: Mapping[str, Any], body: bytes, report: Report, stop: Stop) -> tuple[Mapping[str, Any], bytes]:
-    """`perform` as a slot's child calls it: the figures for the list of runs, and the result as JSON text."""
-    result = perform(body.decode(), thinned(report), stop, id=head["id"], longest=head["time_limit"])
+    """`perform` as a slot's child calls it: the figures for the list of runs, and the result as JSON text.
+
+    `body` is the document as text, or what came of it where the server has assembled it just now (`records.packed`).
+    """
+    began = time.perf_counter()
+    if head.get("assembled"):
+        document, problem = pickle.loads(body)
+    else:
+        document = read(body)
+        problem = assemble(document)
+    result = _performed(document, problem, thinned(report), stop, head["id"], head["time_limit"], began)
     figures = {name: result[name] for name in _FIGURES}
     text = json.dumps(result, ensure_ascii=False, allow_nan=False, separators=(",", ":"))
     stopped = result["state"] == State.STOPPED.value

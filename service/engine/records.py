@@ -2,10 +2,16 @@
 
 from __future__ import annotations
 
+import pickle
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from enum import Enum
 from typing import Any, Protocol
+
+
+def packed(parts: tuple[Any, ...]) -> bytes:
+    """Records on their way to a child of this very installation; they are read nowhere else and never kept."""
+    return pickle.dumps(parts, pickle.HIGHEST_PROTOCOL)
 
 
 @dataclass(frozen=True, slots=True)

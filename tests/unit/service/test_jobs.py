@@ -6,7 +6,10 @@ import math
 import pytest
 
 from service import jobs, samples
+from service.assemble import assemble
 from service.complaints import Refused
+from service.engine import records
+from service.spec import read
 from solvers.problem import Place, Problem, Unknown
 from solvers.solution import Diagnosis, Progress, Solution
 from solvers.units import Unit
@@ -75,6 +78,22 @@ def test_a_stop_reaches_the_solver_and_is_told_as_such(monkeypatch):
     head, text = jobs.solve({"id": "r", "time_limit": 60}, STRAIGHT.encode(), ignore, lambda: True)
     assert head["stopped"] is True
     assert json.loads(text)["state"] == "stopped"
+
+
+@pytest.mark.parametrize("sample", ["straight", "fin"])
+def test_what_the_server_has_assembled_is_solved_as_its_document_is(monkeypatch, sample):
+    seen = []
+    monkeypatch.setattr(jobs, "solve_problem", lambda problem, watch: seen.append(problem) or Solution(None))
+    text = STRAIGHT.encode() if sample == "straight" else samples.text(sample).encode()
+    document = read(text)
+    head = {"id": "r", "time_limit": 60}
+    _, plain = jobs.solve(head, text, ignore, never)
+    _, packed = jobs.solve({**head, "assembled": True}, records.packed((document, assemble(document))), ignore, never)
+    assert seen[0] == seen[1]
+    first, second = json.loads(plain), json.loads(packed)
+    for result in (first, second):
+        result["provenance"].pop("times")
+    assert first == second
 
 
 def test_the_real_solver_obeys_a_stop():
