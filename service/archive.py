@@ -17,7 +17,7 @@ from typing import Any
 from service.spec import Document
 from solvers.curve import Curve
 from solvers.problem import Condition, Problem
-from solvers.solution import Check, Diagnosis, Extremal, Finding, MeshStep, Price, Solution
+from solvers.solution import Check, Diagnosis, Extremal, Finding, MeshStep, Price, Slope, Solution
 from solvers.units import PLAIN, Unit
 from web.unit_text import per
 
@@ -59,8 +59,10 @@ def result_document(
             "costates": _costates(solution, problem, units),
             "prices": [_price(price, problem, units) for price in solution.prices],
         },
-        "slopes": [],
         "extremals": [_extremal(extremal, problem, units) for extremal in solution.extremals],
+        "slopes": [_slope(slope, problem) for slope in solution.slopes],
+        "band": None if solution.value_band is None else {"value": _in(solution.value_band, problem.value_unit)},
+        "sweep": _sweep(solution, problem, units),
         "diagnosis": _diagnosis(solution.diagnosis, problem, units),
         "notes": list(solution.notes),
         "reading": dict(reading),
@@ -232,6 +234,55 @@ def _price(price: Price, problem: Problem, units: _Units) -> dict[str, Any]:
         "price": _in(price.price, unit),
         "unit": unit.text,
     }
+
+
+def _slope(slope: Slope, problem: Problem) -> dict[str, Any]:
+    """The slope in the units of value and constant; what one standard deviation of the constant moves the value by."""
+    own = next(constant.unit for constant in problem.constants if constant.name == slope.constant)
+    unit = Unit(per(problem.value_unit.text, own.text), problem.value_unit.factor / own.factor)
+    return {
+        "constant": slope.constant,
+        "slope": _in(slope.slope, unit),
+        "unit": unit.text,
+        "tolerance": _in(slope.tolerance, own),
+        "contribution": _in(slope.contribution, problem.value_unit),
+    }
+
+
+def _sweep(solution: Solution, problem: Problem, units: _Units) -> dict[str, Any] | None:
+    """The points row by row, and the curves of some of them."""
+    if not solution.sweep:
+        return None
+    own = {constant.name: constant.unit for constant in problem.constants}
+    by = [own[sweep.constant] for sweep in problem.sweeps]
+    return {
+        "constants": [
+            {"name": sweep.constant, "unit": unit.text, "values": _numbers(sweep.values, unit)}
+            for sweep, unit in zip(problem.sweeps, by, strict=True)
+        ],
+        "parameters": {parameter.name: parameter.unit.text for parameter in problem.parameters},
+        "points": [
+            {
+                "at": [_in(value, unit) for value, unit in zip(point.at, by, strict=True)],
+                "verdict": point.verdict.value if point.verdict else None,
+                "value": _in(point.value, problem.value_unit),
+                "value_error": _in(point.value_error, problem.value_unit),
+                "parameters": {name: _in(value, units.parameter(name)) for name, value in point.parameters.items()},
+                "failed": list(point.failed),
+                "note": point.note,
+            }
+            for point in solution.sweep
+        ],
+        "curves": [
+            {
+                "point": index,
+                "arcs": [_arc("", point.curve, {name: units.function(name) for name in point.curve.functions},
+                              problem.independent_unit)],
+            }
+            for index, point in enumerate(solution.sweep)
+            if point.curve is not None
+        ],
+    }  # fmt: skip
 
 
 def _diagnosis(diagnosis: Diagnosis | None, problem: Problem, units: _Units) -> dict[str, Any] | None:

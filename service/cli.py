@@ -87,13 +87,25 @@ def serve(host: str | None, port: int | None, data: Path | None, workers: int | 
 @click.option("--rows", type=int, help="Rows of the table, evenly spaced, both ends included.")
 @click.option("--step", type=float, help="Step of the table in the unit of the independent variable.")
 @click.option("--derivatives", type=click.IntRange(0, 3), default=0, help="Derivatives in the table.")
-def solve(file: str, as_json: bool, table: Path | None, rows: int | None, step: float | None, derivatives: int) -> None:
+@click.option("--sweep", type=click.Path(path_type=Path, dir_okay=False), help="Write the sweep likewise.")
+def solve(
+    file: str,
+    as_json: bool,
+    table: Path | None,
+    rows: int | None,
+    step: float | None,
+    derivatives: int,
+    sweep: Path | None,
+) -> None:
     """Solve the problem in FILE (- for standard input, or the name of a sample)."""
     body = _body(file)
     suffix = _suffix(table, rows, step)
+    sweep_suffix = _suffix(sweep, None, None)
     result = _solved(body)
     if table is not None:
         _write_table(result, table, suffix, rows=rows, step=step, derivatives=derivatives)
+    if sweep is not None:
+        _write_sweep(result, sweep, sweep_suffix)
     if as_json:
         click.echo(json.dumps(result, ensure_ascii=False, allow_nan=False))
     else:
@@ -203,6 +215,17 @@ def _suffix(table: Path | None, rows: int | None, step: float | None) -> str:
     if suffix not in FILE_FORMATS:
         raise click.UsageError(f"A table is written as {', '.join('.' + known for known in FILE_FORMATS)}.")
     return suffix
+
+
+def _write_sweep(result: Mapping[str, Any], path: Path, suffix: str) -> None:
+    from web.tables import FILE_FORMATS, TableError, sweep_table
+
+    try:
+        path.write_bytes(FILE_FORMATS[suffix].write(sweep_table(result)))
+    except TableError as error:
+        click.echo(f"No table: {error.message} {error.hint}", err=True)
+    else:
+        click.echo(f"Sweep written to {path}", err=True)
 
 
 def _write_table(result: Mapping[str, Any], path: Path, suffix: str, **choice: Any) -> None:

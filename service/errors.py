@@ -125,6 +125,12 @@ _TYPES = (
         "The run ended without a curve, so there is no table of it. The result document says why.",
     ),
     ProblemType(
+        "no-sweep",
+        409,
+        "The run has no sweep",
+        "The problem sweeps no constant, so there is no table of points. Give it the member sweep.",
+    ),
+    ProblemType(
         "too-large", 413, "The body is too large", "The detail names the limit in bytes. Nothing of the body was kept."
     ),
     ProblemType(

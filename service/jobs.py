@@ -98,13 +98,16 @@ def solve(head: Mapping[str, Any], body: bytes, report: Report, stop: Stop) -> t
 
 def progress_event(progress: Progress, problem: Problem) -> dict[str, Any]:
     """A sign of life in the user's units, as JSON."""
+    value = _number(progress.value, problem.value_unit.factor)
+    if progress.point is not None:
+        return {"kind": "point", "point": progress.point[0], "of": progress.point[1], "value": value}
     event: dict[str, Any] = {
         "kind": progress.kind,
         "start": progress.start,
         "mesh": progress.mesh,
         "intervals": progress.intervals,
         "points": progress.points,
-        "value": _number(progress.value, problem.value_unit.factor),
+        "value": value,
     }
     if progress.kind == "iteration":
         event |= {"iteration": progress.iteration, "infeasibility": _number(progress.infeasibility)}

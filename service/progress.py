@@ -84,7 +84,7 @@ class Progress:
             channel = self._channel(run)
             if channel.over:
                 return
-            if data["kind"] == "iteration":
+            if data["kind"] in ("iteration", "point"):
                 soon = time.monotonic() - channel.shown < _INTERVAL
                 ring = not soon or channel.pending is None
                 channel.pending = data

@@ -104,11 +104,63 @@ class PriceOfCondition(Part):
     unit: str
 
 
+class SlopeOfConstant(Part):
+    """Change of the optimal value per unit by which a constant is raised."""
+
+    constant: str
+    slope: float | None = Field(description="null where the value has no slope with this constant")
+    unit: str
+    tolerance: float | None = Field(description="the constant's standard deviation, in its unit")
+    contribution: float | None = Field(description="how far one standard deviation moves the value, in its unit")
+
+
+class Band(Part):
+    """What the tolerances of the constants leave open: one standard deviation, to first order."""
+
+    value: float | None = Field(description="standard deviation of the value, in its unit")
+
+
 class Multipliers(Part):
     """What the conditions cost."""
 
     costates: Costates
     prices: list[PriceOfCondition]
+
+
+class SweptConstant(Part):
+    """A constant and the values that were put in, in its unit."""
+
+    name: str
+    unit: str
+    values: list[float | None]
+
+
+class PointOfSweep(Part):
+    """What came out for one value of each swept constant."""
+
+    at: list[float | None] = Field(description="the values, in the order of `constants`")
+    verdict: Verdict | None
+    value: float | None
+    value_error: float | None
+    parameters: dict[str, float | None]
+    failed: list[str] = Field(description="names of the checks that failed")
+    note: str = Field(description="why there is no full result; empty where there is one")
+
+
+class CurveOfSweep(Part):
+    """The curve of one point."""
+
+    point: int = Field(description="index into `points`")
+    arcs: list[ArcPieces]
+
+
+class SweepDocument(Part):
+    """The same problem for many values of one or two constants."""
+
+    constants: list[SweptConstant]
+    parameters: dict[str, str] = Field(description="unit of each parameter")
+    points: list[PointOfSweep] = Field(description="row by row: the values of the last constant run fastest")
+    curves: list[CurveOfSweep] = Field(description="of some points; units as in `curve`")
 
 
 class FindingOfDiagnosis(Part):
@@ -284,10 +336,12 @@ class ResultDocument(Part):
     checks: list[CheckResult]
     curve: CurveDocument | None
     multipliers: Multipliers
-    slopes: list[dict[str, Any]]
     extremals: list[ExtremalFound] = Field(
         default=[], description="what several starts led to, the best (the result itself) first; empty for one start"
     )
+    slopes: list[SlopeOfConstant] = Field(description="empty where no optimum was found")
+    band: Band | None = Field(description="null where no constant has a tolerance")
+    sweep: SweepDocument | None = Field(description="null where no constant is swept")
     diagnosis: DiagnosisDocument | None
     notes: list[str]
     reading: ReadingDocument

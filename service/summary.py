@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import unicodedata
+from collections import Counter
 from collections.abc import Iterator, Mapping
 from typing import Any
 
@@ -80,6 +81,9 @@ def _lines(result: Mapping[str, Any]) -> Iterator[str]:
     if result["value"] is not None:
         value = display.with_error(result["value"], result["value_error"])
         yield _row("value", display.joined(value, result["value_unit"]))
+    if result["band"] is not None:
+        band = display.quantity(result["band"]["value"], result["value_unit"], 2)
+        yield _row("one sigma", f"{band} from the tolerances of the constants")
     for name, parameter in result["parameters"].items():
         yield _row(name, display.quantity(parameter["value"], parameter["unit"], 9))
     yield from _diagnosis(result["diagnosis"])
@@ -100,6 +104,12 @@ def _lines(result: Mapping[str, Any]) -> Iterator[str]:
         yield "Prices (change of the value per unit of the limit)"
         for price in prices:
             yield f"  {display.quantity(price['price'], price['unit'])}  {price['condition']}"
+    if slopes := result["slopes"]:
+        yield ""
+        yield "Slopes (change of the value per unit of the constant)"
+        for slope in slopes:
+            yield f"  {display.quantity(slope['slope'], slope['unit'])}  {_constant(slope)}"
+    yield from _sweep(result)
     if result["notes"]:
         yield ""
         yield "Notes"
@@ -111,6 +121,35 @@ def _lines(result: Mapping[str, Any]) -> Iterator[str]:
 
 def _row(name: str, text: str) -> str:
     return f"  {name:<{_FIRST_COLUMN}}{text}"
+
+
+_MOST_SWEPT = 12
+
+
+def _sweep(result: Mapping[str, Any]) -> Iterator[str]:
+    """How many points were swept, how they ended, and some of them."""
+    sweep = result["sweep"]
+    if sweep is None:
+        return
+    points, names = sweep["points"], " and ".join(constant["name"] for constant in sweep["constants"])
+    verdicts = Counter(point["verdict"] or "no result" for point in points)
+    yield ""
+    yield f"Sweep of {names}: {len(points)} points, " + ", ".join(f"{n} {verdict}" for verdict, n in verdicts.items())
+    shown = sorted({round(k * (len(points) - 1) / (_MOST_SWEPT - 1)) for k in range(_MOST_SWEPT)})
+    for point in (points[index] for index in shown):
+        at = ", ".join(
+            f"{constant['name']} = {display.quantity(value, constant['unit'])}"
+            for constant, value in zip(sweep["constants"], point["at"], strict=True)
+        )
+        value = display.joined(display.with_error(point["value"], point["value_error"]), result["value_unit"])
+        yield f"  {at:<28}{value:<32}{point['verdict'] or 'no result'}"
+
+
+def _constant(slope: Mapping[str, Any]) -> str:
+    """The constant of a slope, and what its tolerance leaves open."""
+    if slope["contribution"] is None:
+        return str(slope["constant"])
+    return f"{slope['constant']}, whose tolerance moves the value by {display.number(slope['contribution'], 2)}"
 
 
 def _check(check: Mapping[str, Any], result: Mapping[str, Any]) -> Iterator[str]:

@@ -32,6 +32,8 @@ def progress_bar(tolerance: float) -> Iterator[Callable[[dict[str, Any]], None]]
         def report(event: dict[str, Any]) -> None:
             nonlocal reached
             share = _share(event.get("error"), tolerance)
+            if event["kind"] == "point":
+                share = min(_WHOLE - 1, _WHOLE * event["point"] // event["of"])
             bar.update(max(0, share - reached), event)
             reached = max(reached, share)
 
@@ -66,5 +68,7 @@ def _share(error: float | None, tolerance: float) -> int:
 def _sentence(event: dict[str, Any] | None) -> str:
     if event is None:
         return ""
+    if event["kind"] == "point":
+        return f"point {event['point']} of {event['of']}, value {number(event['value'])}"
     step = f", iteration {event['iteration']}" if "iteration" in event else ""
     return f"mesh {event['mesh']}{step}, value {number(event['value'])}"

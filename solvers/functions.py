@@ -6,8 +6,8 @@ that its cost does not depend on how the mesh is cut.  Nothing here is scaled: a
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
-from dataclasses import dataclass
+from collections.abc import Callable, Iterator, Mapping
+from dataclasses import dataclass, replace
 from itertools import pairwise
 from math import pi
 
@@ -311,6 +311,14 @@ def _places(sparsity: ca.Sparsity) -> tuple[list[int], list[int]]:
     """Column and row of every nonzero, in CasADi's order."""
     rows, columns = sparsity.get_triplet()
     return list(columns), list(rows)
+
+
+def with_constants(compiled: Compiled, values: Mapping[str, float]) -> Compiled:
+    """The same compiled problem with other values of some constants; its functions take them as inputs."""
+    lowered = compiled.lowered
+    constants = tuple(replace(c, value=values.get(c.name, c.value)) for c in lowered.problem.constants)
+    changed = replace(lowered, problem=replace(lowered.problem, constants=constants))
+    return replace(compiled, lowered=changed, constants=tuple(c.value for c in constants))
 
 
 def linear_controls(compiled: Compiled) -> list[int]:

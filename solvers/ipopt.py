@@ -82,6 +82,7 @@ class Minimum:
     seconds: float
     set_up: float
     status: str
+    convex: bool = False  # the last system had the inertia of a minimum without being changed for it
 
 
 OPTIONS: dict[str, Any] = {
@@ -130,6 +131,18 @@ WARM: dict[str, Any] = {
     "ipopt.warm_start_slack_bound_frac": 1e-6,
     "ipopt.warm_start_mult_bound_push": 1e-6,
 }
+
+
+CLOSE: dict[str, Any] = {
+    "ipopt.mu_init": 1e-9,
+    "ipopt.warm_start_bound_push": 1e-9,
+    "ipopt.warm_start_bound_frac": 1e-9,
+    "ipopt.warm_start_slack_bound_push": 1e-9,
+    "ipopt.warm_start_slack_bound_frac": 1e-9,
+    "ipopt.warm_start_mult_bound_push": 1e-9,
+    "ipopt.max_iter": 60,
+}
+"""Options for a warm start that is nearly the end: the solution for a neighbouring value of a constant."""
 
 
 class Numbers(Protocol):
@@ -306,4 +319,5 @@ def minimise(
         seconds=done - ready,
         set_up=ready - began,
         status=status,
+        convex=(statistics.get("iterations") or {}).get("regularization_size", [1.0])[-1] == 0.0,
     )

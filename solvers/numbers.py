@@ -6,6 +6,7 @@ said by constant indices.  So what a mesh costs is a few array operations, howev
 
 from __future__ import annotations
 
+from copy import copy
 from dataclasses import dataclass
 
 import numpy as np
@@ -63,16 +64,30 @@ class Numbers:
         self.condition_rows = rows.conditions + np.arange(self.conditions)
         self._sizes = placed.scale[placed.gather]
         self._end_sizes = placed.scale[placed.end_gather]
-        given = np.tile(placed.compiled.constants, (self.count, 1))
-        self._given = np.hstack([where.fractions[:, None], given])
-        self._constants = np.array(placed.compiled.constants, dtype=float)
+        self._take(placed.compiled.constants)
         self._point = {kind: Mapped(getattr(point, kind), self.count) for kind in ("value", "jacobian", "hessian")}
         self._end = {kind: Mapped(getattr(end, kind), 1) for kind in ("value", "jacobian", "hessian")}
         self._alike = alike(placed)
         self._linear = _linear(placed)
         self._jacobian, self._gradient, self._hessian = self._recipes()
-        self._z = np.full(where.size, np.nan)
+
+    def _take(self, constants: tuple[float, ...]) -> None:
+        """Put values of the constants in; nothing is known yet for them."""
+        fractions = self._placed.layout.fractions
+        self._given = np.hstack([fractions[:, None], np.tile(constants, (self.count, 1))])
+        self._constants = np.array(constants, dtype=float)
+        self._z = np.full(self._placed.layout.size, np.nan)
         self._known: dict[str, Array] = {}
+
+    def restated(self, constants: tuple[float, ...]) -> Numbers:
+        """The same numbers for other values of the constants."""
+        other = copy(self)
+        other._take(constants)
+        return other
+
+    def alike(self, other: Numbers) -> bool:
+        """Whether both are the same numbers but for the values of the constants."""
+        return self._jacobian is other._jacobian
 
     @property
     def jacobian_pattern(self) -> Pattern:

@@ -30,24 +30,11 @@ def prices(path: Trajectory) -> tuple[Price, ...]:
     compiled = path.program.compiled
     problem = compiled.lowered.problem
     sign = 1.0 if problem.seek is Seek.MAXIMUM else -1.0  # the price is this times the multiplier
-    multipliers = bound_multipliers(path)
+    multipliers = path.bound_multipliers
     found = [*_conditions(path, multipliers), *_limits(path, multipliers)]
     order = {c.pointer: k for k, c in enumerate((*problem.endpoints, *problem.integrals, *problem.constraints))}
     found.sort(key=lambda price: order.get(price.pointer, len(order)))
     return tuple(Price(p.label, p.pointer, sign * p.price + 0.0) for p in found if p.pointer)
-
-
-def bound_multipliers(path: Trajectory) -> Array:
-    """Multipliers of the bounds of z in SI, also of those variables that are fixed."""
-    program = path.program
-    size = abs(program.value_scale)
-    z, numbers = path.z / program.scale, program.numbers
-    scaled = path.row_multipliers * program.row_scale / size
-    pushed = numbers.jacobian_pattern.times_from_left(scaled, numbers.jacobian(z))
-    multipliers = path.bound_multipliers.copy()
-    fixed = program.lower == program.upper
-    multipliers[fixed] = (-(numbers.gradient(z) + pushed) * size / program.scale)[fixed]
-    return multipliers
 
 
 def _conditions(path: Trajectory, multipliers: Array) -> Iterator[Price]:

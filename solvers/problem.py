@@ -202,6 +202,14 @@ class Options:
 
 
 @dataclass(frozen=True, slots=True)
+class Sweep:
+    """The increasing values (SI) of one constant for which the problem is solved too."""
+
+    constant: str
+    values: tuple[float, ...]
+
+
+@dataclass(frozen=True, slots=True)
 class Problem:
     """Everything that the solver has to know.
 
@@ -230,6 +238,7 @@ class Problem:
     touches: tuple[Touch, ...] = ()  # the same
     calm: tuple[Calm, ...] = ()  # the same
     start: Variation = field(default_factory=Variation)  # the same
+    sweeps: tuple[Sweep, ...] = ()  # none, one, or two whose values make a grid
     options: Options = field(default_factory=Options)
     independent_unit: Unit = PLAIN
     value_unit: Unit = PLAIN

@@ -37,6 +37,7 @@ def rejoin(beside: Beside, found: Solution) -> Solution:
         diagnosis=None if found.diagnosis is None else _diagnosis(beside, found.diagnosis, places),
         notes=tuple(notes),
         extremals=tuple(replace(one, solution=rejoin(beside, one.solution)) for one in found.extremals),
+        sweep=tuple(replace(point, curve=None) for point in found.sweep),
         switches=tuple(sorted(set(_switches(beside, found, places)), key=lambda switch: switch.place)),
     )
 

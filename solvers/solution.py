@@ -6,6 +6,8 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from enum import Enum
 
+import numpy as np
+
 from solvers.curve import Curve
 
 
@@ -60,6 +62,20 @@ class Price:
 
 
 @dataclass(frozen=True, slots=True)
+class Slope:
+    """Change of the optimal value per unit of a constant (NaN where there is none), and the constant's tolerance."""
+
+    constant: str
+    slope: float
+    tolerance: float | None = None
+
+    @property
+    def contribution(self) -> float | None:
+        """How far one standard deviation of the constant moves the value; None where it has no tolerance."""
+        return None if self.tolerance is None else abs(self.slope) * self.tolerance
+
+
+@dataclass(frozen=True, slots=True)
 class Finding:
     """One line of a diagnosis: which condition or sub-expression, by how much, where."""
 
@@ -95,7 +111,7 @@ class MeshStep:
 
 @dataclass(frozen=True, slots=True)
 class Progress:
-    """One sign of life.  `kind` is "iteration" or "mesh"; what does not apply is None.
+    """One sign of life.  `kind` is "iteration", "mesh" or "point" (of a sweep); what does not apply is None.
 
     `value` is the functional in SI, `infeasibility` the largest relative violation, `breaks` the mesh (for "mesh"),
     `error` the relative error estimate of the mesh just finished.
@@ -111,6 +127,7 @@ class Progress:
     error: float | None = None
     breaks: tuple[float, ...] | None = None
     start: int = 1  # which of several starts
+    point: tuple[int, int] | None = None  # how many points of a sweep are done, and of how many
 
 
 @dataclass(frozen=True, slots=True)
@@ -135,6 +152,23 @@ Watch = Callable[[Progress], bool]
 
 
 @dataclass(frozen=True, slots=True)
+class SweepPoint:
+    """What came out for one value of each swept constant (`at`, SI, in the order of the sweeps).
+
+    `failed` names the checks that failed; `note` says why there is no value.  The curve is kept at some points only.
+    """
+
+    at: tuple[float, ...]
+    verdict: Verdict | None = None
+    value: float | None = None
+    value_error: float | None = None
+    parameters: Mapping[str, float] = field(default_factory=dict)
+    failed: tuple[str, ...] = ()
+    note: str = ""
+    curve: Curve | None = None
+
+
+@dataclass(frozen=True, slots=True)
 class Solution:
     """The outcome of `solvers.solve.solve`.
 
@@ -153,6 +187,8 @@ class Solution:
     arcs: tuple[ArcCurve, ...] = ()
     switches: tuple[SwitchPlace, ...] = ()  # those that were made unknowns of the problem
     prices: tuple[Price, ...] = ()
+    slopes: tuple[Slope, ...] = ()
+    sweep: tuple[SweepPoint, ...] = ()  # row by row: the values of the last constant run fastest
     checks: tuple[Check, ...] = ()
     diagnosis: Diagnosis | None = None
     meshes: tuple[MeshStep, ...] = ()
@@ -160,6 +196,12 @@ class Solution:
     times: Mapping[str, float] = field(default_factory=dict)  # seconds per stage
     notes: tuple[str, ...] = ()  # what was done that the reader should know: abs smoothed, free ends found, ...
     extremals: tuple[Extremal, ...] = ()  # what several starts led to, the best (this one) first
+
+    @property
+    def value_band(self) -> float | None:
+        """One standard deviation of the value, of first order and with independent tolerances; None without any."""
+        parts = [slope.contribution for slope in self.slopes if slope.contribution is not None]
+        return float(np.sqrt(np.sum(np.square(parts)))) if parts else None
 
 
 @dataclass(frozen=True, slots=True)

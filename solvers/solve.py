@@ -3,8 +3,10 @@
 from __future__ import annotations
 
 import time
+from collections.abc import Mapping
 from dataclasses import replace
 from functools import cache
+from types import MappingProxyType
 
 import numpy as np
 
@@ -28,10 +30,12 @@ from solvers.problem import Problem, Seek
 from solvers.pursuit import FLOOR, End, Pursuit, first_mesh, go_on, pursue
 from solvers.rejoin import rejoin
 from solvers.scaling import find_scales
+from solvers.sensitivity import slopes
 from solvers.sharpen import sharpen
 from solvers.slack import SLACK, rounded_functions, with_slacks
-from solvers.solution import Progress, Solution, SwitchPlace, Verdict, Watch
+from solvers.solution import Check, Price, Progress, Slope, Solution, SwitchPlace, Verdict, Watch
 from solvers.structure import present_switches
+from solvers.sweep import Found, Tools, sweep
 from solvers.trajectory import costate_curve, curve
 from solvers.verdict import judge
 
@@ -39,6 +43,9 @@ EARLY = {End.INFEASIBLE: Verdict.INFEASIBLE, End.UNBOUNDED: Verdict.NO_OPTIMUM}
 """Verdicts that need no curve."""
 
 PROVED = (Verdict.GLOBAL_MINIMUM, Verdict.GLOBAL_MAXIMUM)
+
+NO_OPTIMUM_FOUND = (Verdict.NOT_VERIFIED, Verdict.BEST_FOUND)
+"""Verdicts on a curve whose multipliers need not be those of an optimum."""
 
 SHARE = 0.6
 """Share of the remaining time that the search for switches may take."""
@@ -66,20 +73,44 @@ def _of_arcs(problem: Problem, watch: Watch | None) -> Solution:
 
 
 def _from_starts(problem: Problem, watch: Watch | None) -> Solution:
-    """Solve a problem without arcs from as many starts as are asked for."""
+    """Solve a problem without arcs from as many starts as are asked for, and sweep it where that is asked for."""
+    began = time.perf_counter()
+    deadline = in_seconds(problem.options.time_limit)
     if problem.options.starts > 1:
-        return solve_from_starts(problem, watch, _solve_once, _sizes(problem))
-    return _solve_once(problem, watch)
+        solution = solve_from_starts(problem, watch, _solve_once, _sizes(problem))
+        return _with_sweep(solution, problem, None, watch, deadline) if problem.sweeps else solution
+    found = _found(problem, watch, deadline)
+    solution = _solution(problem, found, began)
+    return _with_sweep(solution, problem, found, watch, deadline) if problem.sweeps else solution
 
 
 def _solve_once(problem: Problem, watch: Watch | None) -> Solution:
-    """Solve a problem from its one start."""
+    """Solve a problem from its one start, for its constants as they stand."""
     began = time.perf_counter()
-    deadline = in_seconds(problem.options.time_limit)
+    return _solution(problem, _found(problem, watch, in_seconds(problem.options.time_limit)), began)
+
+
+def _with_sweep(
+    solution: Solution, problem: Problem, found: Found | None, watch: Watch | None, deadline: Deadline
+) -> Solution:
+    """The solution with the points of the sweep, which starts from the default guess where there were several."""
+    began = time.perf_counter()
+    tools = Tools(
+        alone=lambda other: _found(other, None, deadline),
+        judge=lambda other, at, drawn, known: _solution(
+            other, at, time.perf_counter(), brief=True, drawn=drawn, known=known
+        ),
+    )
+    points = sweep(problem, found or _found(problem, watch, deadline), tools, watch, deadline)
+    return replace(solution, sweep=points, times={**solution.times, "sweep": time.perf_counter() - began})
+
+
+def _found(problem: Problem, watch: Watch | None, deadline: Deadline) -> Found:
+    """The form in which a problem is solved, solved."""
     if problem.seek is Seek.STATIONARY:  # no jump can gain here, and Newton's method goes straighter in few variables
         pursuit = _in_given_form(with_slacks(problem), watch, deadline)
         if pursuit.end in (End.CONVERGED, End.STOPPED, End.TIME):
-            return _solution(problem, pursuit, None, began)
+            return Found(pursuit, None)
     sizes = cache(lambda: _sizes(problem))
     for squared in (True, False):
         gauged = in_parametric_form(problem, sizes, squared)
@@ -87,8 +118,8 @@ def _solve_once(problem: Problem, watch: Watch | None) -> Solution:
             continue
         pursuit = _in_given_form(with_slacks(gauged.problem), watch, deadline)
         if (pursuit.solved and pursuit.end is not End.TORN) or pursuit.end in (End.STOPPED, End.TIME):
-            return _solution(problem, pursuit, gauged, began)
-    return _solution(problem, _in_given_form(with_slacks(problem), watch, deadline), None, began)
+            return Found(pursuit, gauged)
+    return Found(_in_given_form(with_slacks(problem), watch, deadline), None)
 
 
 def _in_given_form(problem: Problem, watch: Watch | None, deadline: Deadline) -> Pursuit:
@@ -133,7 +164,17 @@ def _sizes(problem: Problem) -> dict[str, float]:
     return {problem.independent: span} | {n: span if span / 30 < s < span * 30 else s for n, s in found.items()}
 
 
-def _solution(problem: Problem, pursuit: Pursuit, gauged: Gauged | None, began: float) -> Solution:
+def _solution(
+    problem: Problem,
+    found: Found,
+    began: float,
+    *,
+    brief: bool = False,
+    drawn: bool = True,
+    known: Mapping[str, Check] = MappingProxyType({}),
+) -> Solution:
+    """What was found with its evidence; a brief one has the value and the verdict, and the curve where it is wanted."""
+    pursuit, gauged = found.pursuit, found.gauged
     solved_at = time.perf_counter()
     if gauged is not None and pursuit.solved:
         pursuit = _with_uprights(pursuit, gauged)
@@ -150,18 +191,28 @@ def _solution(problem: Problem, pursuit: Pursuit, gauged: Gauged | None, began: 
     value, value_error = path.value, pursuit.value_error
     value_error_or_none = value_error if np.isfinite(value_error) else None
     curve_error = pursuit.curve_error if np.isfinite(pursuit.curve_error) else None
-    made = checks.run(path, original=problem, value_error=value_error_or_none, curve_error=curve_error)
+    made = checks.run(path, original=problem, value_error=value_error_or_none, curve_error=curve_error,
+                      known=known)  # fmt: skip
     verdict = judge(problem.seek, made, pursuit.end)
     if verdict in PROVED and (gap := lower_bound.gap(made)) is not None:  # the bound says it better than the meshes
         value_error = min(value_error, gap * pursuit.value_size + FLOOR * abs(path.program.value_scale))
         value_error_or_none, diagnosis = value_error, None
-    shape, multipliers, bought = curve(path), costate_curve(path), prices(path)
+    shape, multipliers = curve(path), Curve(path.breaks, {})
+    bought: tuple[Price, ...] = ()
+    depends: tuple[Slope, ...] = ()
+    if not brief:
+        multipliers, bought = costate_curve(path), prices(path)
+        depends = () if verdict in NO_OPTIMUM_FOUND else slopes(path)
     if gauged is not None:
         root = float(np.sqrt(value)) if gauged.squared else 1.0
         factor = 1 / (2 * root) if gauged.squared else 1.0
-        made = checks_on_graph(gauged, shape, made)
+        anew = tuple(check for check in made if check.name not in known)  # those taken over are told already
+        told = {check.name: check for check in checks_on_graph(gauged, shape, anew)}
+        made = tuple(told.get(check.name, check) for check in made)
         bought = prices_of_original(bought, factor)
-        shape, multipliers = as_graph(gauged, shape, multipliers, factor)
+        depends = tuple(replace(slope, slope=factor * slope.slope) for slope in depends)
+        if drawn:
+            shape, multipliers = as_graph(gauged, shape, multipliers, factor)
         if gauged.squared:
             value, value_error_or_none = root, value_error * factor if value_error_or_none is not None else None
     kept = {name: functions for name, functions in shape.functions.items() if not name.startswith(SLACK + " ")}
@@ -170,10 +221,11 @@ def _solution(problem: Problem, pursuit: Pursuit, gauged: Gauged | None, began: 
         value=value,
         value_error=value_error_or_none,
         parameters=parameters,
-        curve=Curve(shape.breaks, kept),
+        curve=Curve(shape.breaks, kept) if drawn else None,
         curve_error=curve_error,
         costates=multipliers,
         prices=bought,
+        slopes=depends,
         checks=made,
         diagnosis=diagnosis,
         meshes=tuple(pursuit.steps),

@@ -8,7 +8,7 @@ definitions of the integrals, conditions at places.  `solvers.numbers` computes 
 
 from __future__ import annotations
 
-from dataclasses import dataclass, fields
+from dataclasses import dataclass, fields, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -60,6 +60,15 @@ def transcribe(compiled: Compiled, mesh: Mesh, where: Layout, scales: Scales, ro
         row_upper=row_upper / row_scale,
         numbers=Numbers(placed),
     )
+
+
+def restated(program: Program, compiled: Compiled) -> Program:
+    """The same program for a compiled problem that differs in constants and limits only."""
+    lower, upper, row_lower, row_upper = limits(compiled, program.layout, program.rows)
+    scale, row_scale = program.scale, program.row_scale
+    return replace(program, compiled=compiled, lower=lower / scale, upper=upper / scale,
+                   row_lower=row_lower / row_scale, row_upper=row_upper / row_scale,
+                   numbers=program.numbers.restated(compiled.constants))  # fmt: skip
 
 
 def _row_scale(compiled: Compiled, mesh: Mesh, where: Layout, scales: Scales, row_sizes: RowSizes) -> Array:

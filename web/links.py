@@ -77,6 +77,11 @@ def table(run_id: str, suffix: str, *, rows: str = "", step: str = "", columns: 
     return _with_query(path, rows=rows, step=step, columns=columns, derivatives=derivatives)
 
 
+def sweep(run_id: str, suffix: str) -> str:
+    """The points of a sweep as `csv`, `json`, `xlsx` or `npz`."""
+    return f"{api_run(run_id)}/sweep.{suffix}"
+
+
 def _with_query(path: str, **values: str) -> str:
     query = urlencode({name: value for name, value in values.items() if value})
     return f"{path}?{query}" if query else path

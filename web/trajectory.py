@@ -130,6 +130,18 @@ def read_costates(result: Mapping[str, Any]) -> Trajectory | None:
     return _read(costates, curve["independent"]) if curve and costates and costates["arcs"] else None
 
 
+def read_sweep(result: Mapping[str, Any]) -> list[tuple[int, Trajectory]]:
+    """The curves of a sweep with the index of their point; the units are those of the curve where there is one."""
+    sweep, curve = result.get("sweep"), result.get("curve") or {}
+    independent = curve.get("independent") or (result.get("problem") or {}).get("independent")
+    if not sweep or not independent:
+        return []
+    return [
+        (int(one["point"]), _read({"arcs": one["arcs"], "units": curve.get("units") or {}}, independent))
+        for one in sweep["curves"]
+    ]
+
+
 def _read(functions: Mapping[str, Any], independent: Mapping[str, Any]) -> Trajectory:
     return Trajectory(
         independent=str(independent["name"]),

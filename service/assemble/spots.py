@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 from service.assemble.dimensions import Units
 from service.assemble.domain import literal, value_of
-from solvers.formula.nodes import Name, Node, Number, walk
+from solvers.formula.nodes import Name, Node, Number, Product, walk
 from solvers.problem import Parameter, Place
 
 SAME = 1e-12
@@ -40,6 +40,8 @@ def spot_of(tree: Node, label: str, units: Units, parameters: dict[str, Paramete
         value *= by.factor
         if not math.isfinite(value):
             raise OverflowError("beyond the range of numbers")
-        if literal(tree) or by.factor != 1:
+        if literal(tree):
             return Spot(Place(Number(value, label), label), value, None)
+        if by.factor != 1:
+            tree = Product((tree, Number(by.factor, repr(by.factor))), (False, False))
     return Spot(Place(tree, label), value, None)

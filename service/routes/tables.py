@@ -100,6 +100,27 @@ def negotiate_table(request: Request, run: TheRun, services: TheServices, choice
     return answer
 
 
+@router.get(
+    "/{id}/sweep.{suffix}",
+    summary="Read the points of a sweep as a table",
+    response_model=None,
+    responses={**_ANSWERS, **failures("no-sweep")},
+)
+def read_sweep(
+    request: Request, run: TheRun, services: TheServices, suffix: Literal["csv", "json", "xlsx", "npz"]
+) -> Response:
+    """One row for each point: its verdict, the constants, the value with its error, the parameters."""
+    from web.tables import FILE_FORMATS, TableError, sweep_table
+
+    try:
+        made = sweep_table(result_of(run, services.store))
+    except TableError as error:
+        raise Fault("no-sweep", f"{error.message} {error.hint}") from None
+    headers = {"content-disposition": f'attachment; filename="curvewright-{run.id[:8]}-sweep.{suffix}"'}
+    file = FILE_FORMATS[suffix]
+    return conditional.answer(request, file.write(made), file.media_type, headers=headers)
+
+
 def _table(run: Run, services: Services, choice: Choice) -> Table:
     from web.tables import TableError, table
 

@@ -26,6 +26,8 @@ MOST_ROWS = 5_000
 
 MOST_COLUMNS = 501
 """Numbers of one such row."""
+MOST_SWEPT = 2_000
+"""Values of one constant in a sweep."""
 
 MOST_ARCS = 12
 """Arcs of one problem."""
@@ -122,6 +124,24 @@ class ArcPart(Part):
     integrand: Formula | None = Field(None, description="Added to the integrand of `functional` on this arc")
 
 
+class SweepPart(Part):
+    """The values that one constant takes: `values`, or `count` of them evenly from `from` to `to`."""
+
+    start: Number | None = Field(None, alias="from", description="First value, in the unit of the constant")
+    end: Number | None = Field(None, alias="to", description="Last value")
+    count: Annotated[int, Field(ge=2, le=MOST_SWEPT)] | None = Field(None, description="How many values, both included")
+    values: Annotated[tuple[Number, ...], Field(min_length=1, max_length=MOST_SWEPT)] | None = Field(
+        None, description="The values themselves, increasing", examples=[[1, 1.5, 2, 3]]
+    )
+
+    @model_validator(mode="after")
+    def _one_of_both(self) -> Self:
+        given = [part is not None for part in (self.start, self.end, self.count)]
+        if any(given) if self.values is not None else not all(given):
+            raise PydanticCustomError("no_sweep", "values, or from, to and count")
+        return self
+
+
 class SolvePart(Part):
     """How far to go."""
 
@@ -173,6 +193,9 @@ class Document(Part):
     guess: Annotated[dict[str, Number | Formula | Points], Field(
         max_length=MOST_NAMES,
         description="Name -> formula or points for an unknown, number for a parameter")] = {}  # fmt: skip
+    sweep: Annotated[dict[str, SweepPart], Field(
+        max_length=2, description="Constant -> the values for which the problem is solved too; two constants: a grid",
+        examples=[{"D": {"from": 1, "to": 4, "count": 31}}])] = {}  # fmt: skip
     solve: SolvePart = SolvePart()
 
     @model_validator(mode="after")

@@ -16,6 +16,7 @@ from service.spec.model import (
     IndependentPart,
     ParameterPart,
     SolvePart,
+    SweepPart,
     TablePart,
     UnknownPart,
 )
@@ -92,6 +93,9 @@ def _complaint(place: str, details: list[ErrorDetails]) -> Complaint:
                 'Add "integrand", "endpoint" or both; "endpoint": "0" asks only for a curve that meets all conditions.'
             )
             return Complaint(place, None, "no-functional", "Nothing is sought: there is no functional.", hint)
+        case "no_sweep":
+            message = "It is not clear which values are meant."
+            return Complaint(place, None, "no-sweep", message, 'Give "values", or "from", "to" and "count".')
         case "too_long" | "too_short":
             return _count(place, context, detail["input"])
         case "string_too_long" | "string_too_short":
@@ -109,6 +113,9 @@ def _complaint(place: str, details: list[ErrorDetails]) -> Complaint:
 def _count(place: str, context: dict[str, Any], given: Any) -> Complaint:
     """A list or an object with too many or too few entries."""
     most, least = context.get("max_length"), context.get("min_length")
+    if place == "/sweep":
+        hint = "Sweep the others in a document of their own."
+        return Complaint(place, None, "too-many", f"At most {most} constants are swept together.", hint)
     if least == 2 and most != 2:
         hint = "Give two points at least, as in [[0, 1], [3, 2]]."
         return Complaint(place, None, "wrong-length", "One point makes no curve.", hint)
@@ -126,6 +133,7 @@ def _members(location: tuple[str | int, ...]) -> tuple[str, ...]:
     parts: dict[str, type[BaseModel]] = {
         "independent": IndependentPart, "parameters": ParameterPart, "unknowns": UnknownPart,
         "functional": FunctionalPart, "arcs": ArcPart, "solve": SolvePart, "tables": TablePart,
+        "sweep": SweepPart,
     }  # fmt: skip
     part = parts[str(location[0])] if location else Document
     return tuple(field.alias or name for name, field in part.model_fields.items())

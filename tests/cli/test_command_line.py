@@ -37,6 +37,18 @@ def solved():
     return _run("solve", "-", "--json", stdin=json.dumps(LINE))
 
 
+def test_a_sweep_is_summed_up_and_written(tmp_path):
+    document = LINE | {"constants": {"h": "2 m +/- 0.1 m"}, "endpoints": ["y(0) = 0", "y(3) = h"]}
+    document["sweep"] = {"h": {"values": [1, 2, 4]}}
+    done = _run("solve", "-", "--sweep", tmp_path / "sweep.csv", stdin=json.dumps(document))
+    assert done.returncode == 0, done.stderr
+    assert "Sweep of h: 3 points, 3 " in done.stdout
+    assert re.search(r"h = 4\s?m +5\.333333", done.stdout)
+    assert re.search(r"one sigma +0\.13\s?m from the tolerances", done.stdout)  # dJ/dh = 2 h/3
+    rows = list(csv.reader((tmp_path / "sweep.csv").read_text().splitlines()))
+    assert [float(row[2]) for row in rows[1:]] == pytest.approx([1 / 3, 4 / 3, 16 / 3])
+
+
 def test_json_is_the_result_document_and_nothing_else(solved):
     assert solved.returncode == 0
     assert solved.stderr == ""

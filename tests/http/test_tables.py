@@ -8,6 +8,8 @@ import numpy as np
 import openpyxl
 import pytest
 
+from tests.http.serving import LINE
+
 # y(x) = 2 x / 3 of the straight line.
 SLOPE = 2 / 3
 
@@ -122,3 +124,27 @@ def test_a_table_that_cannot_be_made_says_why(client, line, query, code):
     answer = client.get(f"{line['links']['self']}/table.csv?{query}")
     assert answer.status_code == 422
     assert [complaint["code"] for complaint in answer.json()["complaints"]] == [code]
+
+
+def test_a_sweep_is_solved_and_handed_over(client, post):
+    document = {
+        **LINE,
+        "constants": {"h": "2 m"},
+        "endpoints": ["y(0) = 0", "y(3) = h"],
+        "sweep": {"h": {"from": 1, "to": 5, "count": 5}},
+    }
+    run = post(document, prefer="wait=60").json()
+    sweep = client.get(run["links"]["result"]).json()["sweep"]
+    # The straight line to (3, h): h^2/3.
+    assert [point["value"] for point in sweep["points"]] == pytest.approx([h**2 / 3 for h in range(1, 6)])
+    answer = client.get(f"{run['links']['self']}/sweep.csv")
+    heading, *rows = csv.reader(io.StringIO(answer.text))
+    assert heading[:3] == ["verdict", "h [m]", "value [m]"]
+    assert [float(row[2]) for row in rows] == [point["value"] for point in sweep["points"]]
+    assert "5 points" in client.get(run["links"]["page"], headers={"accept": "text/html"}).text
+
+
+def test_a_run_without_a_sweep_says_so(client, line):
+    answer = client.get(f"{line['links']['self']}/sweep.csv")
+    assert answer.status_code == 409
+    assert answer.json()["type"] == "/problems/no-sweep"

@@ -13,8 +13,9 @@ from web.figures.plot import Plot, Trace
 from web.figures.plots import plots
 from web.figures.spec import data_block, spec
 from web.figures.svg import svg
+from web.figures.sweep import sweep_plots
 
-__all__ = ["Figure", "Plot", "Trace", "drawn", "figures", "plots", "spec", "svg"]
+__all__ = ["Figure", "Plot", "Trace", "drawn", "figures", "plots", "spec", "svg", "sweep_figures"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -33,6 +34,11 @@ class Figure:
 def figures(result: Mapping[str, Any]) -> tuple[Figure, ...]:
     """All figures of a result document."""
     return tuple(drawn(plot) for plot in plots(result))
+
+
+def sweep_figures(result: Mapping[str, Any]) -> tuple[Figure, ...]:
+    """The figures of the sweep of a result document."""
+    return tuple(drawn(plot) for plot in sweep_plots(result))
 
 
 def drawn(plot: Plot) -> Figure:

@@ -96,7 +96,7 @@ def _over_independent(
         )
     together = ", ".join(trace.label for trace in traces)
     plot = Plot(
-        key=_identifier(key),
+        key=identifier(key),
         heading=f"{heading}: {together}",
         finding=findings.sentence(told),
         across=bracketed(*independent),
@@ -156,7 +156,7 @@ def _extremals(result: Mapping[str, Any]) -> Iterable[Plot]:
         columns = [_at_shares(path, name, shares) for _, _, path in shown]
         unit = first.unit_of(name)
         yield Plot(
-            key=_identifier(f"extremals-{name}"),
+            key=identifier(f"extremals-{name}"),
             heading=f"{name} on the curves found",
             finding=f"{name} along {len(shown)} of the {len(found)} curves found, in the order of the list.",
             across=bracketed(first.independent, first.unit),
@@ -259,6 +259,6 @@ def _unless_thin(plot: Plot) -> Plot:
     return replace(plot, equal=False)
 
 
-def _identifier(text: str) -> str:
+def identifier(text: str) -> str:
     """Letters, digits and hyphens only, so that it can stand in an address and in a style rule."""
     return "".join(c if c.isalnum() and c.isascii() else f"-{ord(c):x}-" if c != "-" else c for c in text)

@@ -185,6 +185,21 @@ SECTIONS = (
         folded=True,
     ),
     Section(
+        "sweep",
+        Shape.MAP,
+        "Sweep",
+        "Constants for whose values the problem is solved too: so many from one value to another, or [1, 1.5, 3]. "
+        "Two constants make a grid.",
+        (
+            Column("from", "from", "From", Kind.VALUE, example="1", width="narrow"),
+            Column("to", "to", "To", Kind.VALUE, example="4", width="narrow"),
+            Column("count", "count", "How many", Kind.VALUE, example="31", width="narrow"),
+            Column("values", "values", "or these values", Kind.VALUE, example="[1, 1.5, 3]"),
+        ),
+        row="swept constant",
+        folded=True,
+    ),
+    Section(
         "solve",
         Shape.RECORD,
         "How far to go",
@@ -202,7 +217,7 @@ SECTIONS = (
 
 ORDER = (
     "format", "title", "notes", "independent", "constants", "parameters", "unknowns", "tables", "where", "dynamics",
-    "functional", "endpoints", "constraints", "arcs", "guess", "solve",
+    "functional", "endpoints", "constraints", "arcs", "guess", "sweep", "solve",
 )  # fmt: skip
 """The order of the members in a document that the form writes."""
 

@@ -121,6 +121,34 @@ def _effect(price: Mapping[str, Any]) -> str:
     return f"raising the limit {'raises' if amount > 0 else 'lowers'} the value"
 
 
+def slopes_of(result: Mapping[str, Any]) -> Rows:
+    """Constant, slope with unit, tolerance, what that moves the value by, in words."""
+    unit = result.get("value_unit") or ""
+    constants = {
+        constant["name"]: constant["unit"] for constant in (result.get("reading") or {}).get("constants") or ()
+    }
+    rows = []
+    for slope in result.get("slopes") or ():
+        amount, tolerance = slope.get("slope"), slope.get("tolerance")
+        effect = "no slope" if amount is None else "no effect" if amount == 0 else "raises" if amount > 0 else "lowers"
+        rows.append(
+            (
+                str(slope["constant"]),
+                display.quantity(amount, slope.get("unit") or ""),
+                display.quantity(tolerance, constants.get(slope["constant"], ""), 3) if tolerance is not None else "",
+                display.quantity(slope.get("contribution"), unit, 2) if tolerance is not None else "",
+                f"a larger {slope['constant']} {effect} the value" if amount else effect,
+            )
+        )
+    return tuple(rows)
+
+
+def band_of(result: Mapping[str, Any]) -> str:
+    """One standard deviation of the value with its unit; empty where there is none."""
+    band = (result.get("band") or {}).get("value")
+    return "" if band is None else display.quantity(band, result.get("value_unit") or "", 2)
+
+
 def reach_of(line: Extremes, result: Mapping[str, Any]) -> tuple[str, ...]:
     return (
         line.name,

@@ -14,11 +14,22 @@ from web import display, links, snippets
 from web.caution import CAUTION_IN_FULL
 from web.extremes import extremes
 from web.figures import Figure, figures
-from web.pages.evidence import Check, Diagnosis, check_of, diagnosis_of, parameters_of, prices_of, reach_of
+from web.pages.evidence import (
+    Check,
+    Diagnosis,
+    band_of,
+    check_of,
+    diagnosis_of,
+    parameters_of,
+    prices_of,
+    reach_of,
+    slopes_of,
+)
 from web.pages.extremals import Found, found_by_starts
 from web.pages.handover import Preview, citation_of, facts_of, meshes_of, preview_of
 from web.pages.page import Page, told
 from web.pages.reading import Reading, reading_view, understood
+from web.pages.sweep import Sweep, sweep_of
 from web.plotly_assets import GLOBAL_SHEET, SCRIPT, placeholder_ids
 from web.tables import read_choice
 from web.verdicts import tally, verdict_sentence
@@ -60,8 +71,11 @@ class ResultPage(Page):
     checks_tally: str = told("How many passed, failed, do not apply.")
     curve_error: str = told("The relative error of the curve; empty where it is not known.")
     notes: tuple[str, ...] = told("What was done that the reader should know.")
+    value_band: str = told("One standard deviation of the value from the tolerances; empty where there is none.")
+    slopes: Rows = told("Constant, slope with unit, tolerance, what that moves the value by, in words.")
     prices: Rows = told("Condition, price with unit, what raising the limit does.")
     reach: Rows = told("Limit report: quantity, lowest, where, highest, where, largest absolute value.")
+    sweep: Sweep | None = told("The same problem for many values of a constant; None where none is swept.")
     reading: Reading | None = told("How the problem was understood.")
     relations: tuple[Markup, ...] = told("The conditions as MathML.")
     preview: Preview | None = told("The table; None where there is no curve.")
@@ -87,6 +101,7 @@ def result_page(
     seek = str((problem.get("functional") or {}).get("seek") or "")
     drawn = figures(result)
     run_id = str(result.get("id") or "")
+    sweep = sweep_of(result, run_id)
     permalink = base_url.rstrip("/") + links.run(run_id)
     document = json.dumps(problem, ensure_ascii=False, indent=2)
     has_value = result.get("value") is not None
@@ -107,15 +122,18 @@ def result_page(
         extremals=found_by_starts(result),
         extremal_figures=tuple(figure for figure in drawn if figure.key.startswith(EXTREMAL_FIGURES)),
         further_figures=tuple(f for f in drawn if not f.key.startswith((*MAIN_FIGURES, EXTREMAL_FIGURES))),
-        plotly=links.static(SCRIPT) if drawn else "",
+        plotly=links.static(SCRIPT) if drawn or sweep else "",
         plotly_sheet=GLOBAL_SHEET,
-        plotly_placeholders=placeholder_ids() if drawn else (),
+        plotly_placeholders=placeholder_ids() if drawn or sweep else (),
         checks=tuple(check_of(check, result) for check in checks),
         checks_tally=tally(checks),
         curve_error=display.number((result.get("curve") or {}).get("error"), 2) if result.get("curve") else "",
         notes=tuple(str(note) for note in result.get("notes") or ()),
+        value_band=band_of(result),
+        slopes=slopes_of(result),
         prices=prices_of(result),
         reach=tuple(reach_of(line, result) for line in extremes(result)),
+        sweep=sweep,
         reading=reading_view(result["reading"]) if result.get("reading") else None,
         relations=tuple(understood(result["reading"]).values()) if result.get("reading") else (),
         preview=preview_of(result, run_id, read_choice(query or {})),

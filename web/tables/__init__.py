@@ -11,6 +11,7 @@ from web.tables.error import TableError
 from web.tables.npz import to_npz
 from web.tables.places import MOST_ROWS
 from web.tables.sampling import Table, table
+from web.tables.sweep import sweep_table
 
 __all__ = [
     "FILE_FORMATS",
@@ -21,6 +22,7 @@ __all__ = [
     "Table",
     "TableError",
     "read_choice",
+    "sweep_table",
     "table",
     "to_csvw",
 ]

@@ -48,7 +48,9 @@ def to_csvw(table: Table, address: str) -> dict[str, Any]:
         for number, column in enumerate(table.columns, start=1)
     ]
     if table.arcs:
-        columns.insert(0, {"name": "arc", "titles": "arc", "dc:description": "name of the arc", "datatype": "string"})
+        meaning = f"{table.label} of the row"
+        name = {"name": table.label, "titles": table.label, "dc:description": meaning, "datatype": "string"}
+        columns.insert(0, name)
     return {
         "@context": ["http://www.w3.org/ns/csvw", {"@language": "en"}],
         "url": address,
@@ -69,7 +71,7 @@ def to_json(table: Table) -> bytes:
         "rows": [[value if math.isfinite(value) else None for value in row] for row in table.rows.tolist()],
     }
     if table.arcs:
-        document["arcs"] = list(table.arcs)
+        document[f"{table.label}s"] = list(table.arcs)
     return json.dumps(document, ensure_ascii=False, allow_nan=False, separators=(",", ":")).encode()
 
 

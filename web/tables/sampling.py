@@ -24,7 +24,7 @@ class Table:
     """Numbers with their columns; `rows` has the shape (rows, columns), NaN where an arc lacks a function.
 
     `arcs` names the arc of each row, or is empty where there is only one arc.  `record` says where the numbers come
-    from, in pairs of heading and text.
+    from, in pairs of heading and text.  `label` is what `arcs` are called where the rows carry another word.
     """
 
     title: str
@@ -33,12 +33,13 @@ class Table:
     arcs: tuple[str, ...] = ()
     record: tuple[tuple[str, str], ...] = ()
     caution: str = CAUTION
+    label: str = "arc"
 
     @property
     def headings(self) -> tuple[str, ...]:
         """What stands above the columns, `arc` first where there are several."""
         numbers = tuple(column.heading for column in self.columns)
-        return ("arc", *numbers) if self.arcs else numbers
+        return (self.label, *numbers) if self.arcs else numbers
 
 
 def table(
@@ -80,11 +81,11 @@ def table(
         columns=described(trajectory, chosen, numbers, (result.get("problem") or {}).get("unknowns") or {}),
         rows=np.concatenate([some for _, some in numbers]),
         arcs=tuple(arc.name for arc, some in places for _ in some) if len(trajectory.arcs) > 1 else (),
-        record=_record(result),
+        record=record_of(result),
     )
 
 
-def _record(result: Mapping[str, Any]) -> tuple[tuple[str, str], ...]:
+def record_of(result: Mapping[str, Any]) -> tuple[tuple[str, str], ...]:
     """Where the numbers come from."""
     provenance = result.get("provenance") or {}
     curve = result.get("curve") or {}

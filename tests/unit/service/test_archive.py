@@ -10,8 +10,20 @@ from service.archive import result_document
 from service.spec import read
 from solvers.curve import Curve
 from solvers.formula.nodes import Name, Number
-from solvers.problem import Condition, Parameter, Place, Problem, Unknown
-from solvers.solution import Check, Diagnosis, Extremal, Finding, MeshStep, Price, Solution, Status, Verdict
+from solvers.problem import Condition, Constant, Parameter, Place, Problem, Sweep, Unknown
+from solvers.solution import (
+    Check,
+    Diagnosis,
+    Extremal,
+    Finding,
+    MeshStep,
+    Price,
+    Slope,
+    Solution,
+    Status,
+    SweepPoint,
+    Verdict,
+)
 from solvers.units import PLAIN, Unit
 from web.trajectory import read_costates, read_trajectory
 
@@ -34,6 +46,7 @@ PROBLEM = Problem(
     places=(Place(Number(0.0, "0"), "0"), Place(Name("T"), "T")),
     unknowns=(Unknown("x", 2, unit=MM), Unknown("F", 0, unit=N)),
     parameters=(Parameter("T", unit=MS),),
+    constants=(Constant("k", 2.0, 0.5, MM), Constant("n", 3.0)),
     endpoints=(Condition(Name("x"), HALF, HALF, "x(T) = 500", "/endpoints/0", MM),),
     constraints=(Condition(Name("F"), None, HALF, "F <= 0.5", "/constraints/0", N),),
     integrals=(Condition(Name("F"), None, HALF, "integral(F) <= 1", "/constraints/1", PLAIN),),
@@ -62,6 +75,7 @@ SOLVED = Solution(
         {"x": (np.array([5.0]),) * 2, "x'": (np.array([7.0]),) * 2, "F <= 0.5": (np.array([11.0]),) * 2},
     ),
     prices=(Price("x(T) = 500", "/endpoints/0", 4.0), Price("integral(F) <= 1", "/constraints/1", -2.0)),
+    slopes=(Slope("k", 4.0, 0.003), Slope("n", np.nan)),
     checks=(
         Check("motion", Status.PASSED, "All well.", 1e-9, 1e-6, 0.1, "x"),
         Check("convexity", Status.NOT_APPLICABLE, "No."),
@@ -101,6 +115,35 @@ def test_a_price_is_value_per_limit():
     assert (first["price"], first["unit"]) == (pytest.approx(4.0), "mJ/mm")
     assert (second["price"], second["unit"]) == (pytest.approx(-2000.0), "mJ")
     assert first["pointer"] == "/endpoints/0"
+
+
+def test_a_slope_is_value_per_constant_and_the_band_is_a_value():
+    result = _archived()
+    first, second = result["slopes"]
+    # 4 J per m are 4 mJ per mm; 3 mm of tolerance are 12 mJ.
+    assert (first["constant"], first["unit"]) == ("k", "mJ/mm")
+    assert (first["slope"], first["tolerance"], first["contribution"]) == pytest.approx((4.0, 3.0, 12.0))
+    assert second == {"constant": "n", "slope": None, "unit": "mJ", "tolerance": None, "contribution": None}
+    assert result["band"] == {"value": pytest.approx(12.0)}
+    assert _archived(replace(SOLVED, slopes=()))["band"] is None
+
+
+def test_a_sweep_is_in_the_units_of_its_constants_and_of_the_value():
+    problem = replace(PROBLEM, sweeps=(Sweep("k", (1.0, 2.0)),))
+    points = (
+        SweepPoint((1.0,), Verdict.LOCAL_MINIMUM, 0.25, 1e-9, {"T": 0.3}, curve=CURVE),
+        SweepPoint((2.0,), note="The time limit was reached before this point."),
+    )
+    sweep = result_document(DOCUMENT, problem, replace(SOLVED, sweep=points), {}, {})["sweep"]
+    assert sweep["constants"] == [{"name": "k", "unit": "mm", "values": [1000.0, 2000.0]}]
+    assert sweep["parameters"] == {"T": "ms"}
+    first, second = sweep["points"]
+    assert (first["at"], first["value"], first["parameters"]) == ([1000.0], 250.0, {"T": 300.0})
+    assert (second["verdict"], second["value"]) == (None, None)
+    (curve,) = sweep["curves"]
+    assert curve["point"] == 0
+    assert curve["arcs"] == _archived()["curve"]["arcs"]
+    assert _archived()["sweep"] is None
 
 
 def test_costates_are_value_per_state_and_densities_are_that_per_time():

@@ -100,7 +100,12 @@ def hose_document() -> dict[str, Any]:
                 }
             ],
         },
-        "slopes": [],
+        "slopes": [
+            {"constant": "l", "slope": multiplier, "unit": "m", "tolerance": 0.02, "contribution": 0.02 * multiplier},
+            {"constant": "w", "slope": 0.0, "unit": "m^2", "tolerance": None, "contribution": None},
+        ],
+        "sweep": None,
+        "band": {"value": 0.02 * multiplier},
         "diagnosis": None,
         "notes": ["The length condition is an integral condition; its multiplier is found with the curve."],
         "reading": {
@@ -116,7 +121,10 @@ def hose_document() -> dict[str, Any]:
                 }
             ],
             "parameters": [],
-            "constants": [],
+            "constants": [
+                {"name": "l", "value": 4.2, "unit": "m", "tolerance": 0.02},
+                {"name": "w", "value": 6.5, "unit": "N/m", "tolerance": None},
+            ],
             "functional": {
                 "sentence": "Least integral of y*sqrt(1 + y'^2) from x = 0 to x = 3",
                 "mathml": "<math><mi>J</mi><mo>=</mo><mo>∫</mo><mi>y</mi><msqrt><mn>1</mn><mo>+</mo><msup><mi>y′</mi>"

@@ -196,3 +196,23 @@ def test_what_several_starts_led_to_is_listed_and_drawn(several, hose):
     text = render(made)
     assert text.index('id="checks"') < text.index('id="extremals"') < text.index('id="notes"')
     assert page(hose).extremals == () and 'id="extremals"' not in render(page(hose))
+
+
+def test_slopes_say_what_each_constant_does_and_what_its_tolerance_leaves_open(hose):
+    shown = page(hose)
+    first, second = shown.slopes
+    slope = hose["slopes"][0]["slope"]
+    assert first[0] == "l"
+    assert first[2].replace("\N{NO-BREAK SPACE}", " ") == "0.02 m"
+    assert first[4] == f"a larger l {'raises' if slope > 0 else 'lowers'} the value"
+    assert (second[2], second[3], second[4]) == ("", "", "no effect")
+    text = render(shown)
+    assert "What the value depends on" in text
+    assert f"± {shown.value_band}" in text
+
+
+def test_without_tolerances_there_is_no_band(hose):
+    shown = page({**hose, "band": None, "slopes": hose["slopes"][1:]})
+    assert shown.value_band == ""
+    assert "one standard deviation" not in render(shown)
+    assert "What the value depends on" not in render(page({**hose, "band": None, "slopes": []}))

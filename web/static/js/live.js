@@ -56,6 +56,12 @@ export function enhance(root) {
       part("meshes").append(row(cells));
       say(`Mesh ${event.mesh} is solved: value ${withUnit(event.value)}, relative error ${amount(event.error, 2)}.`);
     }
+    if (event.kind === "point") {
+      put("mesh", `sweep: point ${event.point} of ${event.of}`);
+      put("value", withUnit(event.value));
+      if (performance.now() - spoken > SPOKEN_EVERY) say(`Point ${event.point} of ${event.of} of the sweep is solved.`);
+      return;
+    }
     if (event.kind === "iteration" && performance.now() - spoken > SPOKEN_EVERY) {
       say(`Mesh ${event.mesh}, iteration ${event.iteration}: value ${withUnit(event.value)}.`);
     }

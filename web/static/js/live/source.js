@@ -1,7 +1,7 @@
 /** Where progress comes from: Server-Sent Events, which reconnect by themselves; polling where they do not come through. */
 
 const ENDED = new Set(["finished", "failed", "stopped"]);
-const KINDS = ["message", "state", "iteration", "mesh", "end"];
+const KINDS = ["message", "state", "iteration", "mesh", "point", "end"];
 const POLL_EVERY = 1500;
 
 /** Call `take` with each event and `ended` once, when the run has ended. */

@@ -1,0 +1,89 @@
+"""The values of constants for which a problem is solved too, in SI."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator
+from dataclasses import replace
+from itertools import pairwise
+
+import numpy as np
+
+from service.assemble.counting import check
+from service.assemble.declared import Declared, beyond
+from service.assemble.names import Kind, Names
+from service.complaints import Complaint, Refused, Stage, closest, pointer, refuse
+from service.spec import Document
+from service.spec.model import SweepPart
+from solvers.problem import Problem, Sweep
+
+MOST_POINTS = 2_000
+"""Points of a sweep, all values of two constants together."""
+
+
+def check_sweep_names(document: Document, names: Names) -> None:
+    """What is swept is a constant.  Raises `Refused` (stage names)."""
+    complaints = []
+    for name in document.sweep:
+        kind = names.kinds.get(names.written.get(name, name))
+        if kind is not Kind.CONSTANT:
+            near = closest(name, names.of(Kind.CONSTANT))
+            what = f"“{name[:40]}” is {kind.value}" if kind else f"There is no “{name[:40]}”"
+            hint = f"Did you mean “{near}”?" if near else "Only constants are swept; declare it under constants."
+            place = pointer("sweep", name)
+            complaints.append(Complaint(place, None, "unknown-name", f"{what}; no values can be put in.", hint))
+    refuse(Stage.NAMES, complaints)
+
+
+def read_sweeps(document: Document, names: Names, declared: Declared) -> tuple[Sweep, ...]:
+    """Raises `Refused`: stage conditions for values out of order, size for too many."""
+    refuse(Stage.CONDITIONS, (found for name, part in document.sweep.items() for found in _wrong(name, part)))
+    total = math.prod(len(_values(part)) for part in document.sweep.values())
+    if total > MOST_POINTS:
+        message = f"The sweep has {total:,} points; at most {MOST_POINTS:,} are solved."
+        refuse(Stage.SIZE, [Complaint("/sweep", None, "problem-too-large", message, "Take fewer values.")])
+    sweeps = []
+    for name, part in document.sweep.items():
+        factor = declared.units[names.written[name]].factor
+        values = tuple(value * factor for value in _values(part))
+        refuse(Stage.UNITS, [beyond(pointer("sweep", name))] if not all(map(math.isfinite, values)) else [])
+        sweeps.append(Sweep(names.written[name], values))
+    return tuple(sweeps)
+
+
+def check_extremes(problem: Problem, document: Document, names: Names) -> None:
+    """The problem is well posed for the first and the last value too.  Raises `Refused` at the place of the sweep."""
+    written = {names.written[name]: name for name in document.sweep}
+    for sweep in problem.sweeps:
+        name = written[sweep.constant]
+        shown = _values(document.sweep[name])
+        for value, said in ((sweep.values[0], shown[0]), (sweep.values[-1], shown[-1])):
+            constants = tuple(replace(c, value=value) if c.name == sweep.constant else c for c in problem.constants)
+            try:
+                check(replace(problem, constants=constants))
+            except Refused as refused:
+                first = refused.complaints[0]
+                message = f"For {name} = {said:g}: {first.message}"
+                refuse(refused.stage, [Complaint(pointer("sweep", name), None, first.code, message, first.hint)])
+
+
+def _values(part: SweepPart) -> tuple[float, ...]:
+    if part.values is not None:
+        return part.values
+    assert part.start is not None  # the model sees to it that all three are given
+    assert part.end is not None
+    assert part.count is not None
+    return tuple(float(value) for value in np.linspace(part.start, part.end, part.count))
+
+
+def _wrong(name: str, part: SweepPart) -> Iterator[Complaint]:
+    values = _values(part)
+    if all(before < after for before, after in pairwise(values)):
+        return
+    if part.values is not None:
+        message = "The values do not increase."
+        yield Complaint(pointer("sweep", name, "values"), None, "values-order", message, "Sort them; each value once.")
+    else:
+        message = f"The values do not increase from {part.start:g} to {part.end:g}."
+        hint = "Let `from` be less than `to`; the order in which they are solved does not matter."
+        yield Complaint(pointer("sweep", name, "to"), None, "values-order", message, hint)

@@ -1,0 +1,110 @@
+"""A sweep: the values and verdicts of single solves, from neighbour to neighbour, against closed forms."""
+
+from dataclasses import replace
+
+import numpy as np
+import pytest
+
+from solvers.problem import Sweep
+from solvers.solution import Verdict
+from solvers.solve import solve
+from tests.unit.solvers.problems import LEAST_TIME, shape, stated
+
+CHAIN = {
+    "independent": {"name": "x", "from": -1, "to": 1},
+    "constants": {"w": 1, "l": 2.4},
+    "functional": {"integrand": "w*y*sqrt(1 + y'^2)"},
+    "endpoints": ["y(-1) = 0", "y(1) = 0"],
+    "constraints": ["integral(sqrt(1 + y'^2)) = l"],
+}
+
+
+def swept(problem, **values):
+    return replace(problem, sweeps=tuple(Sweep(name, tuple(map(float, given))) for name, given in values.items()))
+
+
+def hanging(length):
+    """Gelfand, Fomin (1963), section 12: y = a cosh(x/a) - a cosh(1/a) with 2 a sinh(1/a) the length."""
+    low, high = 0.05, 50.0
+    for _ in range(200):
+        middle = (low + high) / 2
+        low, high = (middle, high) if 2 * middle * np.sinh(1 / middle) > length else (low, middle)
+    a = low
+    return a + a**2 * np.sinh(2 / a) / 2 - a * np.cosh(1 / a) * length
+
+
+def test_every_value_of_a_chain_of_many_lengths_is_that_of_the_catenary():
+    lengths = np.linspace(2.1, 3.5, 15)
+    points = solve(swept(shape(**CHAIN), l=lengths)).sweep
+    assert [point.at[0] for point in points] == pytest.approx(lengths)
+    for point in points:
+        assert abs(point.value - hanging(point.at[0])) <= point.value_error <= 1e-5
+        assert point.verdict is Verdict.LOCAL_MINIMUM, point.failed
+    assert [index for index, point in enumerate(points) if point.curve is not None] == [0, 2, 5, 7, 9, 12, 14]
+
+
+def test_two_constants_make_a_grid_whose_last_runs_fastest():
+    points = solve(swept(shape(**CHAIN), w=[1, 2], l=[2.3, 2.5, 2.7])).sweep
+    assert [point.at for point in points] == [(1, 2.3), (1, 2.5), (1, 2.7), (2, 2.3), (2, 2.5), (2, 2.7)]
+    assert [point.value for point in points] == pytest.approx([p.at[0] * hanging(p.at[1]) for p in points])
+
+
+def test_switches_move_with_the_constant():
+    # Pontryagin et al. (1962), section 5 (from memory): T = 1 + 2 sqrt(1/2 + D) from x = D at the speed 1.
+    problem = stated(
+        **LEAST_TIME | {"constants": {"D": 1}, "endpoints": ["x(0) = D", "x'(0) = 1", "x(T) = 0", "x'(T) = 0"]}
+    )
+    points = solve(swept(problem, D=np.linspace(0.5, 2, 7))).sweep
+    for point in points:
+        assert abs(point.value - 1 - 2 * np.sqrt(0.5 + point.at[0])) <= point.value_error
+        assert point.parameters == {"T": pytest.approx(point.value)}
+        assert point.verdict is Verdict.LOCAL_MINIMUM
+
+
+def test_the_verdict_is_that_of_each_point():
+    # Jacobi (1837): x'^2 - x^2 is least along x = 0 only up to the length pi; beyond, nothing is least.
+    problem = stated(constants={"L": 2.0}, independent={"name": "t", "from": 0, "to": "L"},
+                     functional={"integrand": "u^2 - x^2"}, endpoints=["x(0) = 0", "x(L) = 1"])  # fmt: skip
+    points = solve(swept(problem, L=[1.0, 2.0, 2.5, 3.0, 3.3, 4.0])).sweep
+    good = {Verdict.LOCAL_MINIMUM, Verdict.GLOBAL_MINIMUM}
+    assert [point.verdict in good for point in points] == [True] * 4 + [False] * 2
+    for point in points[:4]:
+        assert abs(point.value - 1 / np.tan(point.at[0])) <= point.value_error
+
+
+def test_where_nothing_is_feasible_the_point_says_so_and_the_others_go_on():
+    problem = stated(constants={"D": 1}, endpoints=["x(0) = 0", "x(1) = D"], constraints=["u <= 2"])
+    points = solve(swept(problem, D=[1.0, 1.5, 2.5, 3.0])).sweep
+    assert [point.value for point in points[:2]] == pytest.approx([1.0, 2.25])
+    assert [point.verdict for point in points[2:]] == [Verdict.INFEASIBLE] * 2
+    assert all(point.value is None and "No curve satisfies" in point.note for point in points[2:])
+
+
+def test_what_is_stationary_is_followed_as_such():
+    problem = stated(constants={"L": 4.0}, independent={"name": "t", "from": 0, "to": "L"},
+                     functional={"seek": "stationary", "integrand": "u^2 - x^2"},
+                     endpoints=["x(0) = 0", "x(L) = 1"])  # fmt: skip
+    points = solve(swept(problem, L=[3.5, 4.0, 4.5])).sweep
+    assert {point.verdict for point in points} == {Verdict.STATIONARY}
+    assert [point.value for point in points] == pytest.approx([1 / np.tan(point.at[0]) for point in points])
+
+
+def test_a_stop_ends_the_sweep_and_the_points_say_so():
+    seen = []
+
+    def watch(progress):
+        seen.append(progress)
+        return progress.point == (2, 5)
+
+    problem = stated(constants={"D": 1}, endpoints=["x(0) = 0", "x(1) = D"])
+    points = solve(swept(problem, D=[1, 2, 3, 4, 5]), watch).sweep
+    assert [point.value is None for point in points] == [False, False, True, True, True]
+    assert points[-1].note == "The run was stopped before this point."
+    assert [sign.point for sign in seen if sign.kind == "point"] == [(k, 5) for k in range(1, 6)]
+
+
+def test_without_time_no_point_is_made_up():
+    problem = swept(stated(constants={"D": 1}, endpoints=["x(0) = 0", "x(1) = D"]), D=[1, 2])
+    points = solve(replace(problem, options=replace(problem.options, time_limit=1e-3))).sweep
+    assert [point.value for point in points] == [None, None]
+    assert points[0].note == "The time limit was reached before this point."
