@@ -15,6 +15,7 @@ import asyncio
 import logging
 import threading
 import time
+from collections import deque
 from collections.abc import AsyncIterator, Callable
 from dataclasses import replace
 from functools import partial
@@ -33,8 +34,8 @@ _log = logging.getLogger(__name__)
 
 _LOOK_SECONDS = 1.0  # between looks for expired leases, unwritten outcomes and room in the engine
 
-Write = Callable[[], State | None]
-"""Writes an outcome; the state of the run after it, or None where it was not this attempt's to change."""
+Write = Callable[[], Run | None]
+"""Writes an outcome; the run after it, or None where it was not this attempt's to change."""
 
 
 class Dispatcher:
@@ -49,6 +50,7 @@ class Dispatcher:
         self._feeding = threading.RLock()
         self._backlog = True  # runs may be waiting in the store
         self._held: dict[str, Run] = {}  # what the engine has
+        self._just_ended: deque[Run] = deque(maxlen=64)  # spares those who wait for them a look into the store
         self._unwritten: dict[tuple[str, int], tuple[Run, Write]] = {}
         self._closing = threading.Event()
         self._owner: Owner | None = None
@@ -125,7 +127,8 @@ class Dispatcher:
             if run is None or run.state.ended:
                 return run
         await self._progress.ended(id, seconds)
-        return await asyncio.to_thread(self._store.get, id)
+        ended = next((run for run in tuple(self._just_ended) if run.id == id), None)
+        return ended or await asyncio.to_thread(self._store.get, id)
 
     async def follow(self, id: str, after: str | None = None) -> AsyncIterator[Event]:
         """The events of a run after the one with the id `after`, until its end.  Nothing where there is no such run."""
@@ -184,38 +187,35 @@ class Dispatcher:
             self._end(run.id, State.STOPPED)
             raise
 
-    def _settle(self, run: Run, outcome: Outcome) -> State | None:
-        """Write an outcome; the state that it leads to.  Raises StoreError."""
+    def _settle(self, run: Run, outcome: Outcome) -> Run | None:
+        """Write an outcome; the run as it is then.  Raises StoreError."""
         store, seconds = self._store, outcome.seconds
         match outcome.ending:
             case Ending.ANSWERED:
                 figures = Figures(**outcome.head["figures"], seconds=seconds)
                 stopped = bool(outcome.head.get("stopped"))
-                changed = store.finish(run, outcome.body, figures, stopped=stopped)
-                state = State.STOPPED if stopped else State.FINISHED
+                return store.finish(run, outcome.body, figures, stopped=stopped)
             case Ending.STOPPED:
-                changed, state = store.stop(run, seconds=seconds), State.STOPPED
+                return store.stop(run, seconds=seconds)
             case Ending.RAISED:
                 reason = f"error in the worker: {outcome.reason}"
-                changed, state = store.fail(run, reason, seconds=seconds), State.FAILED
+                return store.fail(run, reason, seconds=seconds)
             case Ending.LIMIT:
-                changed, state = store.fail(run, outcome.reason, seconds=seconds), State.FAILED
+                return store.fail(run, outcome.reason, seconds=seconds)
             case Ending.DIED:
                 deaths = run.deaths + 1
                 run = replace(run, deaths=deaths, reason=f"its worker died: {outcome.reason}")
                 if deaths < self._settings.attempts:
-                    changed, state = store.give_back(run), State.WAITING
-                else:
-                    reason = f"its worker died {deaths} times, the last time by {outcome.reason}"
-                    changed, state = store.fail(run, reason, seconds=seconds), State.FAILED
+                    return store.give_back(run)
+                reason = f"its worker died {deaths} times, the last time by {outcome.reason}"
+                return store.fail(run, reason, seconds=seconds)
             case Ending.UNSTARTED | Ending.CLOSED:
-                changed, state = store.give_back(run), State.WAITING
-        return state if changed else None
+                return store.give_back(run)
 
     def _write(self, run: Run, write: Write) -> None:
         """Write and tell; keep for later what cannot be written now."""
         try:
-            state = write()
+            after = write()
         except StoreError as error:
             if (run.id, run.attempt) not in self._unwritten:
                 _log.error("run %s: its outcome waits in memory: %s", run.id, error)
@@ -226,15 +226,17 @@ class Dispatcher:
             self._unwritten[run.id, run.attempt] = run, partial(self._give_up, run)
             return
         self._unwritten.pop((run.id, run.attempt), None)
-        if state is State.WAITING:
+        if after is None:
+            return
+        if after.state is State.WAITING:
             self._backlog = True
-            self._progress.publish(run.id, {"kind": "state", "state": state.value})
-        elif state is not None:
-            self._end(run.id, state)
+            self._progress.publish(run.id, {"kind": "state", "state": after.state.value})
+        else:
+            self._just_ended.append(after)
+            self._end(run.id, after.state)
 
-    def _give_up(self, run: Run) -> State | None:
-        changed = self._store.fail(run, "internal error: the worker's answer could not be kept")
-        return State.FAILED if changed else None
+    def _give_up(self, run: Run) -> Run | None:
+        return self._store.fail(run, "internal error: the worker's answer could not be kept")
 
     def _end(self, id: str, state: State) -> None:
         self._progress.publish(id, {"kind": "end", "state": state.value})

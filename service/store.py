@@ -51,10 +51,14 @@ _BY_ID = _SELECT.where(runs.c.id == sql.bindparam("sought"))
 _BY_KEY = _SELECT.where(runs.c.key == sql.bindparam("sought"))
 _DOCUMENT = sql.select(documents.c.document).where(documents.c.run_id == sql.bindparam("sought"))
 _RESULT = sql.select(results.c.document, results.c.compressed).where(results.c.run_id == sql.bindparam("sought"))
-_MOVE = runs.update().where(
-    runs.c.id == sql.bindparam("sought"),
-    runs.c.attempt == sql.bindparam("tried"),
-    runs.c.state == State.SOLVING.value,
+_MOVE = (
+    runs.update()
+    .where(
+        runs.c.id == sql.bindparam("sought"),
+        runs.c.attempt == sql.bindparam("tried"),
+        runs.c.state == State.SOLVING.value,
+    )
+    .returning(*_COLUMNS)
 )
 _WAITING = sql.select(sql.func.count()).where(runs.c.state == State.WAITING.value)
 
@@ -212,32 +216,35 @@ class Store:
             found = connection.execute(sql.select(runs.c.id).where(mine, runs.c.cancel_asked == 1))
             return [str(id) for id in found.scalars()]
 
-    def finish(self, run: Run, result: bytes, figures: Figures, *, stopped: bool = False) -> bool:
-        """Keep the result (JSON text in UTF-8); `stopped` where the run was cancelled.  False: not its attempt."""
+    def finish(self, run: Run, result: bytes, figures: Figures, *, stopped: bool = False) -> Run | None:
+        """Keep the result (JSON text in UTF-8); `stopped` where the run was cancelled.
+
+        Returns the run as it is then, as all four do that end an attempt; None where this is not its attempt any more.
+        """
         large = len(result) >= _COMPRESS_FROM
         state = State.STOPPED if stopped else State.FINISHED
         values = {field.name: getattr(figures, field.name) for field in fields(Figures)}
         content = zlib.compress(result, 1) if large else result
         with self._write() as connection:
-            if not _move(connection, run.id, run.attempt, state, values):
-                return False
-            connection.execute(_INSERT_RESULT, {"run_id": run.id, "compressed": int(large), "document": content})
-        return True
+            ended = _move(connection, run.id, run.attempt, state, values)
+            if ended is not None:
+                connection.execute(_INSERT_RESULT, {"run_id": run.id, "compressed": int(large), "document": content})
+        return ended
 
-    def fail(self, run: Run, reason: str, *, seconds: float | None = None) -> bool:
-        """End a run without a result; `run.deaths` is kept.  False: not its attempt."""
+    def fail(self, run: Run, reason: str, *, seconds: float | None = None) -> Run | None:
+        """End a run without a result; `run.deaths` is kept."""
         values = {"reason": reason, "deaths": run.deaths, "seconds": seconds}
         with self._write() as connection:
             return _move(connection, run.id, run.attempt, State.FAILED, values)
 
-    def stop(self, run: Run, *, seconds: float | None = None) -> bool:
-        """End a cancelled run that left no result.  False: not its attempt."""
+    def stop(self, run: Run, *, seconds: float | None = None) -> Run | None:
+        """End a cancelled run that left no result."""
         values = {"reason": "stopped on request", "seconds": seconds}
         with self._write() as connection:
             return _move(connection, run.id, run.attempt, State.STOPPED, values)
 
-    def give_back(self, run: Run) -> bool:
-        """Let a run wait again, with its `deaths` and `reason` so far.  False: not its attempt."""
+    def give_back(self, run: Run) -> Run | None:
+        """Let a run wait again, with its `deaths` and `reason` so far."""
         values = {"deaths": run.deaths, "reason": run.reason}
         with self._write() as connection:
             return _move(connection, run.id, run.attempt, State.WAITING, values)
@@ -295,11 +302,12 @@ class Store:
             yield connection
 
 
-def _move(connection: Connection, id: str, attempt: int, state: State, values: Mapping[str, Any]) -> bool:
+def _move(connection: Connection, id: str, attempt: int, state: State, values: Mapping[str, Any]) -> Run | None:
     """Change the state of a run that is being solved in this attempt."""
     change: dict[str, Any] = {"sought": id, "tried": attempt, "updated": time.time(), "owner": None, "lease": None}
     change |= {"state": state.value, **values}
-    return connection.execute(_MOVE, change).rowcount == 1
+    row = connection.execute(_MOVE, change).one_or_none()
+    return None if row is None else _run(row)
 
 
 def _one(connection: Connection, query: sql.Select[Any], sought: str) -> Run | None:

@@ -208,16 +208,16 @@ def ways_to_end(store):
 def test_an_ended_run_ends_only_once(store, first):
     accept(store)
     (run,) = claim(store)
-    assert ways_to_end(store)[first](run)
-    ended = store.get(run.id)
-    assert [end(run) for end in ways_to_end(store)] == [False] * 4
+    ended = ways_to_end(store)[first](run)
+    assert ended == store.get(run.id)
+    assert [end(run) for end in ways_to_end(store)] == [None] * 4
     assert store.ask_cancel(run.id) == ended
     assert claim(store) == []
 
 
 def test_a_waiting_run_cannot_be_ended_by_an_attempt(store):
     run = accept(store)
-    assert [end(run) for end in ways_to_end(store)] == [False] * 4
+    assert [end(run) for end in ways_to_end(store)] == [None] * 4
     assert store.get(run.id) == run
 
 
