@@ -37,6 +37,7 @@ from solvers.solution import Check, Price, Progress, Slope, Solution, SwitchPlac
 from solvers.structure import present_switches
 from solvers.sweep import Found, Tools, sweep
 from solvers.trajectory import costate_curve, curve
+from solvers.usage import table_notes
 from solvers.verdict import judge
 
 EARLY = {End.INFEASIBLE: Verdict.INFEASIBLE, End.UNBOUNDED: Verdict.NO_OPTIMUM}
@@ -274,6 +275,7 @@ def _notes(problem: Problem, pursuit: Pursuit, gauged: Gauged | None) -> list[st
     rounded = sorted(rounded_functions(pursuit.problem))
     if rounded:
         notes.append(f"{', '.join(rounded)} in the formulas: rounded over a width of 1e-9, so that derivatives exist.")
+    notes += table_notes(pursuit.paths[-1])
     if pursuit.end is End.SETTLED:
         notes.append("The value stands still to the tolerance; the curve may be less exact than the value.")
     return notes

@@ -7,13 +7,11 @@ from collections.abc import Iterator
 import numpy as np
 from numpy.typing import NDArray
 
-from solvers.formula.evaluate import evaluate
+from solvers.along import Along
 from solvers.formula.nodes import Name, Node, children, walk
 from solvers.formula.printer import text
 from solvers.functions import Compiled
 from solvers.layout import Layout
-from solvers.limits import constants_of
-from solvers.sketch import ARRAYS
 from solvers.solution import Finding
 
 Array = NDArray[np.float64]
@@ -21,28 +19,8 @@ Array = NDArray[np.float64]
 
 def undefined_places(compiled: Compiled, where: Layout, z: Array) -> tuple[Finding, ...]:
     """The sub-expressions that are not finite although their parts are, on values (SI) of a mesh."""
-    lowered = compiled.lowered
-    places = z[where.places]
-    points = where.points(places)
-    values: dict[tuple[str, int], Array] = {(lowered.problem.independent, 0): points}
-    values |= {(name, 0): np.full_like(points, value) for name, value in constants_of(compiled).items()}
-    for parameter, index in zip(lowered.problem.parameters, where.parameters, strict=True):
-        values[parameter.name, 0] = np.full_like(points, z[index])
-    values |= {q: z[where.inner[:, k]] for k, q in enumerate(lowered.states)}
-    values |= {q: z[where.controls[:, k]] for k, q in enumerate(lowered.controls)}
-    abbreviations = dict(lowered.problem.where)
-
-    def look_up(name: str, order: int) -> Array:
-        if name in abbreviations:
-            return value_of(abbreviations[name])
-        if (name, order) not in values:
-            values[name, order] = value_of(lowered.given[name, order])
-        return values[name, order]
-
-    def value_of(tree: Node) -> Array:
-        with np.errstate(all="ignore"):
-            return np.broadcast_to(np.array(evaluate(tree, look_up, ARRAYS), dtype=np.float64), points.shape)
-
+    points = where.points(z[where.places])
+    value_of = Along(compiled, points, z[where.inner], z[where.controls], z[where.parameters]).value
     found: dict[str, Finding] = {}
     for tree, pointer in _formulas(compiled):
         for node in walk(tree):

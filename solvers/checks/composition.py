@@ -17,8 +17,9 @@ from enum import Enum
 
 import numpy as np
 
+from solvers.checks.tabulated import bounds, inside
 from solvers.formula.evaluate import REAL
-from solvers.formula.nodes import At, Call, Name, Negative, Node, Number, Power, Product, Sum
+from solvers.formula.nodes import At, Call, Lookup, Name, Negative, Node, Number, Power, Product, Sum
 
 INF = math.inf
 ROUNDING = 1e-12
@@ -92,6 +93,8 @@ def shape_of(tree: Node, leaf: Leaf, unfold: Unfold) -> Shape:
             return Shape(shape.bend, 0.0 if shape.low >= 0 else -INF, 0.0 if shape.high <= 0 else INF)
         case Call(function="sqrt", arguments=(inner,)) if _norm(inner, leaf, unfold):
             return Shape(Bend.CONVEX, 0.0, INF)
+        case Lookup(arguments=arguments):
+            return _lookup(tree, [shape_of(part, leaf, unfold) for part in arguments])
         case Call(function=function, arguments=arguments):
             return _call(function, [shape_of(part, leaf, unfold) for part in arguments])
     return UNKNOWN
@@ -242,6 +245,22 @@ def _call(function: str, parts: list[Shape]) -> Shape:
             convex = all(p.affine or (p.convex and p.low >= 0) for p in parts)
             return Shape(Bend.CONVEX if convex else Bend.UNKNOWN, 0.0, INF)
     return UNKNOWN
+
+
+def _lookup(node: Lookup, parts: list[Shape]) -> Shape:
+    """A table bends as its polynomials do; of two arguments nothing is known but where the values lie."""
+    table, orders = node.table, node.orders
+    within = inside(table, [(part.low, part.high) for part in parts])
+    low, high = bounds(table, orders, within)
+    if all(part.bend is Bend.GIVEN for part in parts):
+        return Shape(Bend.GIVEN, low, high)
+    if len(parts) > 1 or orders[0]:
+        return Shape(Bend.UNKNOWN, low, high)
+    (rise, steepest), (least, most) = (bounds(table, (order,), within) for order in (1, 2))
+    argument = parts[0]
+    along = argument.affine or (argument.convex and rise >= 0) or (argument.concave and steepest <= 0)
+    against = argument.affine or (argument.concave and rise >= 0) or (argument.convex and steepest <= 0)
+    return Shape(_bend(least >= 0 and along, most <= 0 and against), low, high)
 
 
 def _given_interval(function: str, parts: list[Shape]) -> tuple[float, float]:

@@ -1,0 +1,42 @@
+"""Values of formulas at points of a curve, as arrays in SI."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from solvers.formula.evaluate import evaluate
+from solvers.formula.nodes import Node
+from solvers.functions import Compiled
+from solvers.limits import constants_of
+from solvers.lowering import Quantity
+from solvers.sketch import ARRAYS
+
+Array = NDArray[np.float64]
+
+
+class Along:
+    """P points of a curve: their places, states (P x n), controls (P x m), and the parameters."""
+
+    def __init__(self, compiled: Compiled, points: Array, states: Array, controls: Array, parameters: Array) -> None:
+        self._lowered = compiled.lowered
+        self._shape = points.shape
+        problem = self._lowered.problem
+        self._abbreviations = dict(problem.where)
+        self._values: dict[Quantity, Array] = {(problem.independent, 0): points}
+        numbers = constants_of(compiled) | dict(zip((p.name for p in problem.parameters), parameters, strict=True))
+        self._values |= {(name, 0): np.full_like(points, number) for name, number in numbers.items()}
+        self._values |= dict(zip(self._lowered.states, states.T, strict=True))
+        self._values |= dict(zip(self._lowered.controls, controls.T, strict=True))
+
+    def value(self, tree: Node) -> Array:
+        """The values of a formula without values at places; what is not defined is no finite number."""
+        with np.errstate(all="ignore"):
+            return np.broadcast_to(np.array(evaluate(tree, self._look_up, ARRAYS), dtype=np.float64), self._shape)
+
+    def _look_up(self, name: str, order: int) -> Array:
+        if name in self._abbreviations:
+            return self.value(self._abbreviations[name])
+        if (name, order) not in self._values:
+            self._values[name, order] = self.value(self._lowered.given[name, order])
+        return self._values[name, order]

@@ -1,0 +1,64 @@
+"""What a solved curve makes of the tables of its problem: which part of them it uses, and what they do beyond it."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+import numpy as np
+
+from solvers.along import Along
+from solvers.checks.sampling import Sampler
+from solvers.formula.nodes import Call, Lookup, Node, walk
+from solvers.formula.printer import text
+from solvers.problem import Problem
+from solvers.tables import Between, Outside, Table
+from solvers.trajectory import Trajectory
+
+PLACES = np.linspace(0.0, 1.0, 9)
+"""Places in every interval at which arguments are looked at."""
+
+BEYOND = {Outside.HOLD: "holds its last value", Outside.EXTEND: "goes on along its tangent"}
+
+
+def table_notes(path: Trajectory) -> Iterator[str]:
+    """One sentence for every argument of a table along the curve, and one for tables with rounded corners."""
+    sampler = Sampler(path)
+    sample = sampler.grid(PLACES)
+    n, m = sampler.point.states, sampler.point.controls
+    along = Along(path.program.compiled, sample.places, sample.v[:, :n], sample.v[:, n : n + m], path.parameters)
+    told: set[str] = set()
+    for lookup in _lookups(sampler.problem):
+        table = lookup.table
+        for index, argument in enumerate(lookup.arguments):
+            values = along.value(argument)
+            if np.isfinite(values).all():
+                told.add(_range(table, index, text(argument), float(values.min()), float(values.max())))
+        if table.between is Between.LINEAR:
+            told.add(f"{table.name} is linear between its points: its corners are rounded off over a thousandth of "
+                     "the steps beside them, so that derivatives exist.")  # fmt: skip
+    yield from sorted(told)
+
+
+def _range(table: Table, index: int, argument: str, least: float, most: float) -> str:
+    (low, high), unit = table.ranges[index], table.argument_units[index]
+    room = 1e-9 * (high - low)
+    # What is lost in the rounding of the range is 0.
+    shown = [f"{(number if abs(number) > room else 0.0) / unit.factor:.4g}" for number in (least, most, low, high)]
+    in_unit = f" {unit.text}" if unit.text else ""
+    used = f"{table.name} is used for {argument} from {shown[0]} to {shown[1]}{in_unit}"
+    measured = f"it was measured from {shown[2]} to {shown[3]}{in_unit}"
+    if table.outside is not Outside.REFUSE and (least < low - room or most > high + room):
+        return f"{used}, but {measured}: beyond that it {BEYOND[table.outside]}."
+    return f"{used}; {measured}."
+
+
+def _lookups(problem: Problem) -> Iterator[Lookup]:
+    """Every use of a table along the curve."""
+    trees: list[Node] = [tree for _, tree in problem.where]
+    trees += [side for line in problem.dynamics for side in (line.left, line.right)]
+    trees += [condition.body for condition in problem.constraints]
+    trees += [] if problem.integrand is None else [problem.integrand]
+    inside = [condition.body for condition in problem.integrals]
+    trees += [node.arguments[0] for body in inside for node in walk(body)
+              if isinstance(node, Call) and node.function == "integral"]  # fmt: skip
+    yield from (node for tree in trees for node in walk(tree) if isinstance(node, Lookup))
