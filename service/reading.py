@@ -21,6 +21,8 @@ from solvers.lowering import Quantity, lower, primed
 from solvers.necessary import necessary_conditions
 from solvers.necessary_arcs import necessary_on_arcs
 from solvers.problem import Place, Problem, Unknown
+from solvers.tables import Between, Outside, Table
+from solvers.units import Unit
 from web.unit_text import per
 
 Json = dict[str, Any]
@@ -54,6 +56,7 @@ def read_back(problem: Problem, document: Document) -> Json:
             }
             for constant in problem.constants
         ],
+        "tables": [_table(table) for table in problem.tables],
         "functional": _functional(problem, document),
         "relations": list(_relations(problem, document)),
         "freedom": roles.freedom(),
@@ -173,6 +176,34 @@ class _RolesOnArcs(_Roles):
         first, last = self.arcs[0][1], self.arcs[-1][1]
         yield self.problem.places[0], first.lowered.states, first.reach
         yield self.problem.places[-1], last.lowered.states, last.reach
+
+
+def _table(table: Table) -> Json:
+    """What was measured, and what holds between the points and beyond them."""
+    arguments = list(zip(table.arguments, table.argument_units, table.knots, strict=True))
+    ranges = [f"{name} from {_amount(knots[0], unit)} to {_amount(knots[-1], unit)}" for name, unit, knots in arguments]
+    count = " x ".join(str(len(knots)) for *_, knots in arguments)
+    between = {
+        Between.SMOOTH: "smooth between",
+        Between.MONOTONE: "between them it rises and falls only where they do",
+        Between.LINEAR: "straight between",
+    }[table.between]
+    beyond = {
+        Outside.REFUSE: "arguments stay inside",
+        Outside.HOLD: "beyond them the last value holds",
+        Outside.EXTEND: "beyond them it goes on along its tangent",
+    }[table.outside]
+    shown = f"{table.name}({', '.join(table.arguments)})"
+    return {
+        "name": table.name,
+        "of": [{"name": name, "unit": unit.text} for name, unit, _ in arguments],
+        "unit": table.unit.text,
+        "sentence": f"{shown}: {count} points, {listing(ranges)}; {between}; {beyond}",
+    }
+
+
+def _amount(number: float, unit: Unit) -> str:
+    return f"{number / unit.factor:.6g} {unit.text}".strip()
 
 
 def _functional(problem: Problem, document: Document) -> Json:

@@ -293,6 +293,15 @@ class Freedom(Part):
     sentence: str
 
 
+class TableRead(Part):
+    """A measured function."""
+
+    name: str
+    of: list[ParameterRead] = Field(description="its arguments")
+    unit: str
+    sentence: str = Field(description="how many points there are, and what holds between and beyond them")
+
+
 class ReadingDocument(Part):
     """How the problem was understood."""
 
@@ -300,6 +309,7 @@ class ReadingDocument(Part):
     unknowns: list[UnknownRead]
     parameters: list[ParameterRead]
     constants: list[ConstantRead]
+    tables: list[TableRead]
     arcs: list[ArcRead] = Field(description="empty where one set of laws holds from end to end")
     functional: FunctionalRead
     relations: list[RelationRead]

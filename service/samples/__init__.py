@@ -15,7 +15,7 @@ ABOUT: dict[str, str] = {
     "ramp": "A furnace ramp of least energy under a thermal stress limit.",
     "hose": "The hanging shape of a hose of given length.",
     "hose-over-bench": "The same hose, held up by a bench.",
-    "lens-rod": "The path of a light ray through a graded-index rod.",
+    "lens-rod": "The path of a light ray through a rod whose refractive index is a measured table.",
     "conduit": "The shortest conduit on a cylindrical tank around a hatch.",
     "sleeve": "The film of least area between two unequal hoops.",
     "sleeve-limit": "The hoop distance at which that film lets go.",

@@ -14,13 +14,17 @@ NOTHING: Array = np.empty(0)
 
 @dataclass(frozen=True, slots=True)
 class Trace:
-    """One line: `places` and `values` of the same length; NaN lifts the pen.  `number` picks colour and dash."""
+    """One line: `places` and `values` of the same length; NaN lifts the pen.  `number` picks colour and dash.
+
+    `marked` shows the points themselves, `joined` the line between them.
+    """
 
     label: str
     places: Array
     values: Array
     number: int = 0
     marked: bool = False
+    joined: bool = True
 
     @property
     def line(self) -> Line:

@@ -10,11 +10,12 @@ import numpy as np
 
 from solvers.curve import Array
 from web.display import number
-from web.display import unit as printed
 from web.extremes import extremes_of
 from web.figures import findings
+from web.figures.labels import bracketed, identifier
 from web.figures.plot import Plot, Trace
 from web.figures.series import jumps, series
+from web.figures.tabulated import tabulated
 from web.palette import LINES
 from web.trajectory import Trajectory, read_costates, read_trajectory
 
@@ -38,16 +39,12 @@ def plots(result: Mapping[str, Any]) -> tuple[Plot, ...]:
         if costates is not None:
             named = {name: f"costate of {name}" for name in trajectory.stored}
             made += _grouped(costates, costates.stored, 0, "costate", "Multipliers", named)
+    made += tabulated(result.get("problem") or {})
     made += _extremals(result)
     made += _history(result)
     if trajectory is not None:
         made += _mesh(trajectory)
     return tuple(made)
-
-
-def bracketed(name: str, unit: str) -> str:
-    """A label as print has it: `v [m/s²]`."""
-    return f"{name} [{printed(unit)}]" if unit else name
 
 
 def _functions(trajectory: Trajectory) -> Iterable[Plot]:
@@ -257,8 +254,3 @@ def _unless_thin(plot: Plot) -> Plot:
     if 1 / MOST_ALIKE <= ratio <= MOST_ALIKE:
         return plot
     return replace(plot, equal=False)
-
-
-def identifier(text: str) -> str:
-    """Letters, digits and hyphens only, so that it can stand in an address and in a style rule."""
-    return "".join(c if c.isalnum() and c.isascii() else f"-{ord(c):x}-" if c != "-" else c for c in text)

@@ -27,7 +27,7 @@ def spec(plot: Plot) -> dict[str, Any]:
     data = [
         {
             "type": "scatter",
-            "mode": "lines+markers" if trace.marked else "lines",
+            "mode": "+".join(["lines"] * trace.joined + ["markers"] * trace.marked),
             "name": trace.label,
             "x": _numbers(trace.places),
             "y": _numbers(trace.values),

@@ -114,7 +114,7 @@ def _line(trace: Trace, across: Scale, up: Scale, logarithmic: bool) -> str:
             dots.append(point.split(" "))
         pen, last = "L", point
     dash = "" if trace.line.dash == "solid" else f' stroke-dasharray="{trace.line.dash.replace("px", "")}"'
-    path = f'<path class="plot-line {trace.colour[2:]}"{dash} d="{"".join(steps)}"/>'
+    path = f'<path class="plot-line {trace.colour[2:]}"{dash} d="{"".join(steps)}"/>' if trace.joined else ""
     if trace.marked:
         path += "".join(f'<circle class="plot-dot {trace.colour[2:]}" cx="{x}" cy="{y}" r="3.5"/>' for x, y in dots)
     return path
@@ -154,6 +154,9 @@ def _legend(plot: Plot) -> list[str]:
     for trace, (x, row) in zip(plot.traces, _legend_places(plot), strict=True):
         y = 14 + LEGEND * row
         dash = "" if trace.line.dash == "solid" else f' stroke-dasharray="{trace.line.dash.replace("px", "")}"'
-        parts.append(f'<path class="plot-line {trace.colour[2:]}"{dash} d="M{x:.0f} {y - 4}h28"/>')
+        if trace.joined:
+            parts.append(f'<path class="plot-line {trace.colour[2:]}"{dash} d="M{x:.0f} {y - 4}h28"/>')
+        else:
+            parts.append(f'<circle class="plot-dot {trace.colour[2:]}" cx="{x + 14:.0f}" cy="{y - 4}" r="3.5"/>')
         parts.append(f'<text class="plot-tick" x="{x + 33:.0f}" y="{y}">{escape(trace.label)}</text>')
     return parts

@@ -7,6 +7,7 @@ from collections.abc import Mapping
 from typing import Any
 
 from web.form.reading import REST, value_from_text
+from web.form.rows import text_from_arguments, text_from_rows
 from web.form.sections import HEAD, SECTIONS, Column, Kind, Section, Shape
 
 MOST_FIELDS = 900
@@ -124,6 +125,12 @@ def _text(value: Any, column: Column) -> str | None:
         return text if text and value_from_text(text, column.kind) == value else None
     if isinstance(value, str):
         return value if value.strip() else None
+    if column.kind is Kind.POINTS and (rows := text_from_rows(value)) is not None:
+        return rows
+    if column.kind is Kind.ARGUMENTS and (words := text_from_arguments(value)) is not None:
+        return words
+    if column.kind in (Kind.POINTS, Kind.ARGUMENTS) and value and isinstance(value, list | dict):
+        return _compact(value)
     if column.kind in (Kind.VALUE, Kind.GUESS) and (_is_number(value) or isinstance(value, list | dict)):
         return _compact(value)
     return None

@@ -3,20 +3,16 @@
 from __future__ import annotations
 
 import json
-import math
-import re
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from typing import Any
 
+from web.form.rows import arguments_from_text, number_from, rows_from_text
 from web.form.sections import HEAD, ORDER, SECTIONS, Column, Kind, Section, Shape
 from web.pointer import token
 
 REST = "rest"
 """Key of the hidden fields that hold, as JSON, what the form has no field for."""
-
-_NUMBER = re.compile(r"[+-]?(\d+\.?\d*|\.\d+)([eE][+-]?\d+)?", re.ASCII)
-_INTEGER = re.compile(r"[+-]?\d{1,15}", re.ASCII)
 
 
 @dataclass(frozen=True, slots=True)
@@ -71,10 +67,13 @@ def rows(section: str, fields: Mapping[str, str]) -> list[int]:
 def value_from_text(text: str, kind: Kind) -> Any:
     """What the text of a field means: a number where it reads as one and may be one, else the text itself."""
     text = text.strip()
-    if kind in (Kind.VALUE, Kind.GUESS) and _NUMBER.fullmatch(text):
-        number = int(text) if _INTEGER.fullmatch(text) else float(text)
-        return number if math.isfinite(number) else text
-    if kind in (Kind.VALUE, Kind.GUESS) and text[:1] in ("[", "{"):
+    if kind in (Kind.VALUE, Kind.GUESS) and (number := number_from(text)) is not None:
+        return number
+    if kind is Kind.ARGUMENTS and (arguments := arguments_from_text(text)) is not None:
+        return arguments
+    if kind is Kind.POINTS and (points := rows_from_text(text)) is not None:
+        return points
+    if kind in (Kind.VALUE, Kind.GUESS, Kind.POINTS, Kind.ARGUMENTS) and text[:1] in ("[", "{"):
         try:
             return json.loads(text, parse_constant=_no_constant)
         except (ValueError, RecursionError):

@@ -28,7 +28,9 @@ class Kind(Enum):
     GUESS = "guess"  # a number, a formula, or points as JSON
     LINES = "lines"  # formulas, one on each line
     ENTRIES = "entries"  # name = formula, one on each line
-    CHOICE = "choice"  # one of `Column.choices`
+    CHOICE = "choice"  # one of `Column.choices`; where "" is among them the member may be left out
+    ARGUMENTS = "arguments"  # names with units: `r in mm, z in mm`
+    POINTS = "points"  # rows of numbers, one a line, as they are pasted
 
 
 @dataclass(frozen=True, slots=True)
@@ -40,7 +42,7 @@ class Column:
     label: str
     kind: Kind = Kind.TEXT
     example: str = ""
-    width: str = "wide"  # "narrow", "medium" or "wide": a class of the style sheet
+    width: str = "wide"  # "narrow", "medium", "wide" or "full": a class of the style sheet
     choices: tuple[str, ...] = ()
 
 
@@ -107,6 +109,40 @@ SECTIONS = (
         "Given numbers, with unit and, if known, tolerance: 0.80 m +/- 0.01 m.",
         (Column("value", "", "Value", Kind.VALUE, example="9.80665 m/s^2"),),
         row="constant",
+        folded=True,
+    ),
+    Section(
+        "tables",
+        Shape.MAP,
+        "Measured tables",
+        "Functions given by points, used as n(r) or n(x, y) in formulas. Paste two columns, place and value; for two "
+        "arguments a grid, whose first line has the places of the second and whose other lines begin with one of the "
+        "first.",
+        (
+            Column("of", "of", "Of", Kind.ARGUMENTS, example="r in mm", width="medium"),
+            Column("unit", "unit", "Unit of the values", example="kJ/kg", width="medium"),
+            Column(
+                "between",
+                "between",
+                "Between the points",
+                Kind.CHOICE,
+                "usual: smooth",
+                "medium",
+                ("", "smooth", "monotone", "linear"),
+            ),
+            Column(
+                "outside",
+                "outside",
+                "Beyond them",
+                Kind.CHOICE,
+                "usual: refuse",
+                "medium",
+                ("", "refuse", "hold", "extend"),
+            ),
+            Column("about", "about", "What it is", example="refractive index", width="medium"),
+            Column("points", "points", "Points", Kind.POINTS, "0  1.62\n1  1.61\n2  1.57", "full"),
+        ),
+        row="table",
         folded=True,
     ),
     Section(

@@ -2,10 +2,15 @@
 
 from __future__ import annotations
 
+from typing import TYPE_CHECKING
+
 from markupsafe import Markup
 
+if TYPE_CHECKING:
+    from solvers.formula.parser import Tables
 
-def understood(formula: str) -> Markup:
+
+def understood(formula: str, tables: Tables | None = None) -> Markup:
     """MathML of a formula; empty where it cannot be read (the check of the document then says why)."""
     if not formula.strip():
         return Markup("")
@@ -15,6 +20,6 @@ def understood(formula: str) -> Markup:
     from solvers.formula.parser import parse_either
 
     try:
-        return Markup(mathml(parse_either(formula)))  # our own printer; it escapes every name
+        return Markup(mathml(parse_either(formula, tables or {})))  # our own printer; it escapes every name
     except FormulaError:
         return Markup("")

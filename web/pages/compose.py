@@ -5,7 +5,7 @@ from __future__ import annotations
 import json
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
-from typing import Any, ClassVar
+from typing import TYPE_CHECKING, Any, ClassVar
 
 from markupsafe import Markup
 
@@ -21,6 +21,9 @@ from web.marked import Complaint, complaint
 from web.pages.page import Page, told
 from web.pages.reading import Reading, reading_view
 from web.pointer import at
+
+if TYPE_CHECKING:
+    from solvers.formula.parser import Tables
 
 LONG = 26
 """Characters of a formula whose mathematics fits beside the field."""
@@ -109,11 +112,12 @@ def compose_page(
         by_field.setdefault(item.field, []).append(item)
     status, tone = _status(shown, reading)
     in_form = draft.view == FORM
+    tables = _tables(draft)
     return ComposePage(
         title="Compose a problem",
         view=draft.view,
-        head=tuple(_field(column, column.key, draft, by_field) for column in HEAD) if in_form else (),
-        blocks=tuple(_block(section, draft, by_field) for section in SECTIONS) if in_form else (),
+        head=tuple(_field(column, column.key, draft, by_field, tables) for column in HEAD) if in_form else (),
+        blocks=tuple(_block(section, draft, by_field, tables) for section in SECTIONS) if in_form else (),
         rest=draft.fields.get(REST, ""),
         kept=kept_back(draft.fields),
         text=draft.text,
@@ -122,10 +126,32 @@ def compose_page(
         text_complaints=shown if draft.view == JSON else (),
         status=status,
         tone=tone,
-        reading=reading_view(reading) if reading is not None and not shown else None,
+        reading=reading_view(reading, _pictures(tables)) if reading is not None and not shown else None,
         curl=snippets.curl(draft.text, base_url),
         python=snippets.python(draft.text, base_url),
     )
+
+
+def _tables(draft: Draft) -> Tables:
+    """The tables of a draft, as far as they can be read."""
+    try:
+        document = json.loads(draft.text)
+    except (ValueError, RecursionError):
+        return {}
+    if not isinstance(document, dict) or "tables" not in document:
+        return {}
+    from web.measured import measured  # only where there are some: a server is ready sooner
+
+    return {table.name: table for table in measured(document)}
+
+
+def _pictures(tables: Tables) -> dict[str, Markup]:
+    if not tables:
+        return {}
+    from web.figures import drawn
+    from web.figures.tabulated import plot_of
+
+    return {name: drawn(plot_of(table)).still for name, table in tables.items()}
 
 
 def _complaints(draft: Draft, given: Sequence[Mapping[str, Any]]) -> tuple[Complaint, ...]:
@@ -179,15 +205,15 @@ def _status(complaints: Sequence[Complaint], reading: Mapping[str, Any] | None) 
     return "Not checked yet", ""
 
 
-def _block(section: Section, draft: Draft, by_field: Mapping[str, Sequence[Complaint]]) -> Block:
+def _block(section: Section, draft: Draft, by_field: Mapping[str, Sequence[Complaint]], tables: Tables) -> Block:
     if section.shape is Shape.RECORD:
-        shown: tuple[Row, ...] = (_row(section, section.name, "", draft, by_field),)
+        shown: tuple[Row, ...] = (_row(section, section.name, "", draft, by_field, tables),)
         filled = any(field.value for field in shown[0].fields if field.kind != Kind.CHOICE.value)
     else:
         numbers = rows(section.name, draft.fields)
         filled = bool(numbers)
         shown = tuple(
-            _row(section, f"{section.name}.{number}", f"{section.row} {place}", draft, by_field)
+            _row(section, f"{section.name}.{number}", f"{section.row} {place}", draft, by_field, tables)
             for place, number in enumerate(numbers or [0], start=1)
         )
     wrong = any(field.complaints or field.focus for row in shown for field in row.fields)
@@ -202,20 +228,24 @@ def _block(section: Section, draft: Draft, by_field: Mapping[str, Sequence[Compl
     )
 
 
-def _row(section: Section, row: str, label: str, draft: Draft, by_field: Mapping[str, Sequence[Complaint]]) -> Row:
+def _row(
+    section: Section, row: str, label: str, draft: Draft, by_field: Mapping[str, Sequence[Complaint]], tables: Tables
+) -> Row:
     columns = section.columns
     if section.shape is Shape.MAP:
         columns = (Column("name", "name", "Name", example="x", width="narrow"), *columns)
     return Row(
         id=row,
         label=label,
-        fields=tuple(_field(column, f"{row}.{column.key}", draft, by_field) for column in columns),
+        fields=tuple(_field(column, f"{row}.{column.key}", draft, by_field, tables) for column in columns),
         rest=draft.fields.get(f"{row}.{REST}", ""),
         movable=section.shape is not Shape.RECORD,
     )
 
 
-def _field(column: Column, name: str, draft: Draft, by_field: Mapping[str, Sequence[Complaint]]) -> Field:
+def _field(
+    column: Column, name: str, draft: Draft, by_field: Mapping[str, Sequence[Complaint]], tables: Tables
+) -> Field:
     value = draft.fields.get(name, "")
     return Field(
         id=name,
@@ -226,7 +256,7 @@ def _field(column: Column, name: str, draft: Draft, by_field: Mapping[str, Seque
         width=column.width,
         choices=column.choices,
         complaints=tuple(by_field.get(name, ())),
-        mathml=understood(value) if column.kind is Kind.FORMULA else Markup(""),
+        mathml=understood(value, tables) if column.kind is Kind.FORMULA else Markup(""),
         long=len(value) > LONG,
         focus=name == draft.focus,
         lines=max(value.count("\n") + 1, 2) if column.kind in (Kind.LINES, Kind.ENTRIES) else 1,

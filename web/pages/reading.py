@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
+from types import MappingProxyType
 from typing import Any
 
 from markupsafe import Markup
@@ -22,6 +23,14 @@ class Equation:
 
 
 @dataclass(frozen=True, slots=True)
+class Measured:
+    """A table: a sentence, and where it helps a picture."""
+
+    sentence: str
+    picture: Markup
+
+
+@dataclass(frozen=True, slots=True)
 class Reading:
     """What `_reading.html` shows."""
 
@@ -31,13 +40,17 @@ class Reading:
     independent: str
     arcs: tuple[str, ...]
     unknowns: tuple[str, ...]
+    tables: tuple[Measured, ...]
     freedom: str
     notes: tuple[str, ...]
     necessary: tuple[Equation, ...]
 
 
-def reading_view(reading: Mapping[str, Any]) -> Reading:
-    """From the reading of the interface (see DEVELOPERS.md); its MathML comes escaped from our own printer."""
+def reading_view(reading: Mapping[str, Any], pictures: Mapping[str, Markup] = MappingProxyType({})) -> Reading:
+    """From the reading of the interface (see DEVELOPERS.md); its MathML comes escaped from our own printer.
+
+    `pictures` are of tables, by name.
+    """
     functional = reading.get("functional") or {}
     return Reading(
         sought=str(functional.get("sentence", "")),
@@ -46,6 +59,10 @@ def reading_view(reading: Mapping[str, Any]) -> Reading:
         independent=_independent(reading.get("independent") or {}),
         arcs=tuple(str(arc.get("sentence", "")) for arc in reading.get("arcs") or ()),
         unknowns=tuple(str(unknown.get("sentence", "")) for unknown in reading.get("unknowns") or ()),
+        tables=tuple(
+            Measured(str(table.get("sentence", "")), pictures.get(str(table.get("name", "")), Markup("")))
+            for table in reading.get("tables") or ()
+        ),
         freedom=str((reading.get("freedom") or {}).get("sentence", "")),
         notes=tuple(str(note) for note in reading.get("notes") or ()),
         necessary=tuple(

@@ -37,6 +37,8 @@ from web.verdicts import tally, verdict_sentence
 EXPONENT_SIGNS = "⁰¹²³⁴⁵⁶⁷⁸⁹⁻"
 MAIN_FIGURES = ("curve", "path")
 EXTREMAL_FIGURES = "extremals"
+TABLE_FIGURES = "table-"
+PLACED = (*MAIN_FIGURES, EXTREMAL_FIGURES, TABLE_FIGURES)
 
 Pairs = tuple[tuple[str, str], ...]
 Rows = tuple[tuple[str, ...], ...]
@@ -63,6 +65,7 @@ class ResultPage(Page):
     main_figures: tuple[Figure, ...] = told("The curve itself.")
     extremals: tuple[Found, ...] = told("What several starts led to; empty for one start.")
     extremal_figures: tuple[Figure, ...] = told("These curves over each other.")
+    table_figures: tuple[Figure, ...] = told("Measured tables with the curves through their points.")
     further_figures: tuple[Figure, ...] = told("Derivatives, multipliers, mesh and error history.")
     plotly: str = told("Address of the plotting script; empty where there is no figure.")
     plotly_sheet: str = told("Id of the style sheet link that the plotting script writes its rules to.")
@@ -121,7 +124,8 @@ def result_page(
         main_figures=tuple(figure for figure in drawn if figure.key.startswith(MAIN_FIGURES)),
         extremals=found_by_starts(result),
         extremal_figures=tuple(figure for figure in drawn if figure.key.startswith(EXTREMAL_FIGURES)),
-        further_figures=tuple(f for f in drawn if not f.key.startswith((*MAIN_FIGURES, EXTREMAL_FIGURES))),
+        table_figures=tuple(figure for figure in drawn if figure.key.startswith(TABLE_FIGURES)),
+        further_figures=tuple(figure for figure in drawn if not figure.key.startswith(PLACED)),
         plotly=links.static(SCRIPT) if drawn or sweep else "",
         plotly_sheet=GLOBAL_SHEET,
         plotly_placeholders=placeholder_ids() if drawn or sweep else (),
