@@ -21,11 +21,9 @@ MOST_RELATIONS = 200
 MOST_POINTS = 5_000
 """Points of one guess."""
 
-MOST_ROWS = 5_000
+MOST_ROWS = 2_000
 """Rows of points of one table."""
 
-MOST_COLUMNS = 501
-"""Numbers of one such row."""
 MOST_SWEPT = 2_000
 """Values of one constant in a sweep."""
 
@@ -84,7 +82,7 @@ class TablePart(Part):
         min_length=1, max_length=2, description="Name of each argument -> its unit", examples=[{"r": "mm"}]
     )
     unit: UnitText = ""
-    points: tuple[Annotated[tuple[Number | None, ...], Field(min_length=1, max_length=MOST_COLUMNS)], ...] = Field(
+    points: tuple[Annotated[tuple[Number | None, ...], Field(min_length=1)], ...] = Field(
         min_length=2, max_length=MOST_ROWS,
         description="One argument: rows of argument and value. Two: a grid, whose first row is null and the places of "
         "the second argument, and whose other rows are a place of the first and the values there",

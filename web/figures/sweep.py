@@ -10,8 +10,8 @@ import numpy as np
 from solvers.curve import Array
 from web.display import quantity
 from web.figures import findings
-from web.figures.plot import Plot, Trace
 from web.figures.labels import bracketed, identifier
+from web.figures.plot import Plot, Trace
 from web.figures.series import series
 from web.palette import LINES
 from web.trajectory import Trajectory, read_sweep
