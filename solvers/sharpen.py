@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 
+from solvers.chatter import one_more
 from solvers.collocation import Family
 from solvers.deadline import Deadline
 from solvers.functions import linear_controls
@@ -18,6 +19,8 @@ SOFTNESS = (1e-3, 1e-5)
 """Weights of the softened problems that are tried in turn."""
 ROUNDS = 3
 """How often the structure is read again off a sharpened path."""
+MOST_CHATTER = 5
+"""So many switches are added where a control chatters: each counts about a thousandth of the one before."""
 AGREEMENT = 1e-2
 """How far the value may move when the structure is made exact, relative to its size."""
 
@@ -42,7 +45,7 @@ def sharpen(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit |
             sharp = again
             if sharp.end is End.CONVERGED:
                 break
-        return sharp
+        return _with_more_switches(base, sharp, watch, deadline)
     return None
 
 
@@ -79,6 +82,25 @@ def _with_structure(base: Pursuit, path: Trajectory, watch: Watch | None, deadli
                 return None
             return pursuit if pursuit.end is End.CONVERGED else go_on(pursuit, watch, deadline, 4)
     return None
+
+
+def _with_more_switches(base: Pursuit, sharp: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit:
+    """Where the control chatters, the same with so many switches that those after them do not count any more."""
+    for _ in range(MOST_CHATTER):
+        if sharp.end is End.CONVERGED or deadline.over or sharp.value_met_before:
+            break
+        path = sharp.paths[-1]
+        changed = one_more(path)
+        if changed is None:
+            break
+        pursuit = pursue(changed, watch, deadline, meshes=2, start=path, mesh=_mesh(changed))
+        if not pursuit.solved or _at_the_edge(pursuit.paths[-1]) or not _agrees(pursuit, base):
+            break
+        pursuit = go_on(pursuit, watch, deadline, 4)
+        if pursuit.value_error > sharp.value_error:
+            break
+        sharp = pursuit
+    return sharp
 
 
 def _at_the_edge(path: Trajectory) -> bool:

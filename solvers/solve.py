@@ -13,6 +13,7 @@ import numpy as np
 from solvers import checks
 from solvers.arc_guess import with_sketches
 from solvers.beside import side_by_side
+from solvers.chatter import chatter
 from solvers.checks import lower_bound
 from solvers.checks.redundancy import unambiguous
 from solvers.curve import Curve
@@ -24,7 +25,7 @@ from solvers.gauge import Gauged, in_parametric_form
 from solvers.graph import as_graph, checks_on_graph, prices_of_original, uprights
 from solvers.guess import guesses
 from solvers.layout import layout
-from solvers.lowering import lower
+from solvers.lowering import lower, primed
 from solvers.prices import prices
 from solvers.problem import Problem, Seek
 from solvers.pursuit import FLOOR, End, Pursuit, first_mesh, go_on, pursue
@@ -276,6 +277,13 @@ def _notes(problem: Problem, pursuit: Pursuit, gauged: Gauged | None) -> list[st
     if rounded:
         notes.append(f"{', '.join(rounded)} in the formulas: rounded over a width of 1e-9, so that derivatives exist.")
     notes += table_notes(pursuit.paths[-1])
+    crowd = None if gauged is not None else chatter(pursuit.paths[-1])
+    if crowd is not None and crowd.steady:
+        place = f"{problem.independent} = {crowd.ends / problem.independent_unit.factor:.4g}"
+        unit = f" {problem.independent_unit.text}" if problem.independent_unit.text else ""
+        notes.append(f"{primed(crowd.control)} chatters: it switches ever faster towards {place}{unit}, each time "
+                     f"after some {crowd.ratio:.2f} of the time before. The first switches were found; what follows "
+                     "runs as their mean.")  # fmt: skip
     if pursuit.end is End.SETTLED:
         notes.append("The value stands still to the tolerance; the curve may be less exact than the value.")
     return notes

@@ -22,7 +22,6 @@ KNOWN_FAILURES: dict[tuple[str, str], str] = {
     ("A46", "verdict"): _RELAXED,
     ("A56a", "verdict"): "the tip of the fin is singular, and the second variation is not decided there",
     ("B04a", "verdict"): _WHERE_LIMITS_END,
-    ("B06", "verdict"): "switches without end: no mesh has them all, so the refinement does not settle",
     ("B37", "verdict"): "the second variation is not decided along the limit of the control",
 }
 """Promises that are not kept yet: (case, promise) -> reason.  A promise is "value", "error", "verdict" or "figures"."""
