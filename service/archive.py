@@ -14,10 +14,12 @@ from functools import cache
 from importlib.metadata import PackageNotFoundError, version
 from typing import Any
 
+import numpy as np
+
 from service.spec import Document
-from solvers.curve import Curve
+from solvers.curve import Array, Curve
 from solvers.problem import Condition, Problem
-from solvers.solution import Check, Diagnosis, Extremal, Finding, MeshStep, Price, Slope, Solution
+from solvers.solution import Check, Diagnosis, Extremal, Finding, Fitted, MeshStep, Price, Slope, Solution
 from solvers.units import PLAIN, Unit
 from web.unit_text import per
 
@@ -59,6 +61,7 @@ def result_document(
             "costates": _costates(solution, problem, units),
             "prices": [_price(price, problem, units) for price in solution.prices],
         },
+        "observations": _fit(solution, problem, units),
         "extremals": [_extremal(extremal, problem, units) for extremal in solution.extremals],
         "slopes": [_slope(slope, problem) for slope in solution.slopes],
         "band": None if solution.value_band is None else {"value": _in(solution.value_band, problem.value_unit)},
@@ -169,6 +172,59 @@ def _extremal(extremal: Extremal, problem: Problem, units: _Units) -> dict[str, 
         "starts": list(extremal.starts),
         "checks": [_check(check, problem) for check in found.checks],
         "curve": _curve(found, problem, units),
+    }
+
+
+def _fit(solution: Solution, problem: Problem, units: _Units) -> dict[str, Any] | None:
+    """The fit to observations; a covariance is in the units of its two parameters."""
+    fit = solution.fit
+    if fit is None:
+        return None
+    first = fit.observations[0].unit
+    own = PLAIN if fit.weighted else first
+    names = [name for name in fit.names if name in solution.parameters]
+    kept = [fit.names.index(name) for name in names]
+    matrix = None
+    if fit.covariance is not None:
+        sizes = np.array([units.parameter(name).factor for name in names])
+        matrix = fit.covariance[np.ix_(kept, kept)] / sizes[:, None] / sizes
+    return {
+        "points": fit.points,
+        "sigmas_known": fit.weighted,
+        "sum_of_squares": _finite(fit.squares / own.factor**2),
+        "degrees_of_freedom": _finite(fit.freedom),
+        "spread": _in(fit.spread, own),
+        "unit": own.text,
+        "parameters": {
+            name: {
+                "value": _in(solution.parameters[name], units.parameter(name)),
+                "sigma": None if matrix is None else _finite(float(np.sqrt(max(matrix[k, k], 0.0)))),
+                "unit": units.parameter(name).text,
+            }
+            for k, name in enumerate(names)
+        },
+        "covariance": None if matrix is None else [[_finite(float(v)) for v in row] for row in matrix],
+        "lists": [_fitted(fitted, problem) for fitted in fit.observations],
+    }
+
+
+def _fitted(fitted: Fitted, problem: Problem) -> dict[str, Any]:
+    unit = fitted.unit
+
+    def column(values: Array | None, of: Unit = unit) -> list[float | None] | None:
+        return None if values is None else _numbers(values.tolist(), of)
+
+    return {
+        "of": fitted.label,
+        "pointer": fitted.pointer,
+        "unit": unit.text,
+        "place": column(fitted.places, problem.independent_unit),
+        "observed": column(fitted.observed),
+        "fitted": column(fitted.fitted),
+        "residual": column(fitted.observed - fitted.fitted),
+        "sigma": column(fitted.sigma),
+        "normalised": column(fitted.normalised, PLAIN),
+        "fitted_sigma": column(fitted.fitted_sigma),
     }
 
 

@@ -12,7 +12,7 @@ from service.complaints import listing, pointer
 from service.reading_arcs import arcs_read
 from service.spec import Document
 from service.spec.model import ArcPart
-from solvers.formula.mathml import Range, functional_mathml, mathml
+from solvers.formula.mathml import Misfit, Range, functional_mathml, mathml
 from solvers.formula.nodes import At, Call, Name, Node, Number, Relation, walk
 from solvers.formula.parser import Tables, parse_expression, parse_relation
 from solvers.formula.printer import numeral, text
@@ -211,8 +211,11 @@ def _functional(problem: Problem, document: Document) -> Json:
     integrand = parse_expression(functional.integrand, tables) if functional.integrand else None
     endpoint = parse_expression(functional.endpoint, tables) if functional.endpoint else None
     parts = []
+    if document.observations:
+        count = sum(len(observation.points) for observation in document.observations)
+        parts.append(f"the sum of the squares of the misfits of {count} observation{'s' if count > 1 else ''}")
     if endpoint is not None:
-        parts.append(f"the endpoint term {text(endpoint)}" if integrand is not None else text(endpoint))
+        parts.append(f"the endpoint term {text(endpoint)}" if integrand is not None or parts else text(endpoint))
     if integrand is not None:
         parts.append(f"the integral of {text(integrand)} over {_told(extent)}")
     over = [
@@ -222,9 +225,17 @@ def _functional(problem: Problem, document: Document) -> Json:
     sought = "a stationary value" if functional.seek == "stationary" else f"the {functional.seek}"
     return {
         "sentence": f"Sought is {sought} of {' plus '.join(parts)}.",
-        "mathml": functional_mathml(functional.seek, integrand, endpoint, extent, over),
+        "mathml": functional_mathml(functional.seek, integrand, endpoint, extent, over, _misfits(problem, document)),
         "unit": problem.value_unit.text,
     }
+
+
+def _misfits(problem: Problem, document: Document) -> tuple[Misfit, ...]:
+    """What was measured, for the sums of squares in the functional."""
+    return tuple(
+        Misfit(parse_expression(part.of, _tables(problem)), part.sigma is not None or len(part.points[0]) > 2)
+        for part in document.observations
+    )
 
 
 def _relations(problem: Problem, document: Document) -> Iterator[Json]:
@@ -293,6 +304,7 @@ def _notes(problem: Problem, document: Document) -> Iterator[str]:
     for arc in document.arcs:
         formulas += [*arc.where.values(), arc.integrand]
         relations += [*arc.dynamics, *arc.constraints]
+    formulas += [observation.of for observation in document.observations]
     tables = _tables(problem)
     trees: list[Node] = [parse_expression(formula, tables) for formula in formulas if formula]
     for formula in relations:

@@ -84,8 +84,13 @@ def _lines(result: Mapping[str, Any]) -> Iterator[str]:
     if result["band"] is not None:
         band = display.quantity(result["band"]["value"], result["value_unit"], 2)
         yield _row("one sigma", f"{band} from the tolerances of the constants")
+    fit = result.get("observations")
     for name, parameter in result["parameters"].items():
-        yield _row(name, display.quantity(parameter["value"], parameter["unit"], 9))
+        text = display.quantity(parameter["value"], parameter["unit"], 9)
+        sigma = fit["parameters"][name]["sigma"] if fit else None
+        yield _row(name, text if sigma is None else f"{text}, sigma {display.quantity(sigma, parameter['unit'], 4)}")
+    if fit and fit["spread"] is not None:
+        yield _row("spread", f"{display.quantity(fit['spread'], fit['unit'], 4)} of {fit['points']} observations")
     yield from _diagnosis(result["diagnosis"])
     if result["checks"]:
         yield ""

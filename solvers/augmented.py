@@ -14,6 +14,7 @@ from solvers.formula.nodes import At, Call, Name, Node, walk
 from solvers.formula.parser import DEPTH_LIMIT
 from solvers.formula.substitute import expander
 from solvers.lowering import Lowered
+from solvers.observations import terminal as terminal_of
 from solvers.problem import Condition, Problem
 
 _SECOND_CHOICE = {"H": "ℋ", "L": "ℒ", "p": "ψ", "λ": "Λ", "μ": "κ", "ν": "χ", "C": "E"}
@@ -61,7 +62,8 @@ def augment(problem: Problem, lowered: Lowered, check: Callable[[], None]) -> Au
         return add([expand(condition.body), negative(expand(limit))])
 
     integrand = [expand(problem.integrand)] if problem.integrand is not None else []
-    terminal = [expand(problem.endpoint)] if problem.endpoint is not None else []
+    endpoint = terminal_of(problem, at_ends_only=True)  # what is observed between the ends makes costates jump there
+    terminal = [expand(endpoint)] if endpoint is not None else []
     notes = []
     coupling = tuple(condition for condition in problem.endpoints if prescribed(problem, condition) is None)
     for letter, conditions in (("λ", problem.integrals), ("ν", coupling)):

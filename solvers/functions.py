@@ -20,6 +20,7 @@ from solvers.formula.printer import text
 from solvers.limits import number, quantity_bounds
 from solvers.lookups import Lookups
 from solvers.lowering import Lowered, Quantity, simple_bound
+from solvers.observations import terminal
 from solvers.problem import Condition, Place, Problem
 
 SMOOTHING = 1e-9
@@ -215,8 +216,11 @@ def _end_function(
         for i in range(len(problem.places))
     ]
 
+    ordinals = {id(place.tree): index for index, place in enumerate(problem.places)}  # most trees are the very places
+
     def value_at(name: str, order: int, place: Node, side: str) -> ca.SX:
-        return environments[place_index(problem.places, place)].formula(Name(name, order))
+        index = ordinals.get(id(place))
+        return environments[place_index(problem.places, place) if index is None else index].formula(Name(name, order))
 
     conditions, trees, fixed = [], [], []
     rims = []
@@ -231,7 +235,7 @@ def _end_function(
         else:
             conditions.append(condition)
             trees.append(_lift_integrals(body, integrands))
-    term = _lift_integrals(problem.endpoint, integrands) if problem.endpoint is not None else Number(0.0, "0")
+    term = _lift_integrals(terminal(problem) or Number(0.0, "0"), integrands)
     totals = ca.SX.sym("q", len(integrands))
     numbers = numbers | {_total(k): totals[k] for k in range(len(integrands))}
     outside = Environment(lowered, {}, numbers, lookups, value_at)

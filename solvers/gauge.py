@@ -61,7 +61,7 @@ def in_parametric_form(problem: Problem, sizes: Callable[[], dict[str, float]], 
     name no place between the ends.  `sizes` finds typical sizes of the independent variable and of the unknowns;
     `squared` asks for the first of the two gauges, which is granted where it is right.
     """
-    if problem.integrand is None or problem.dynamics or len(problem.places) != 2:
+    if problem.integrand is None or problem.dynamics or problem.observations or len(problem.places) != 2:
         return None
     names = {unknown.name for unknown in problem.unknowns}
     if any(unknown.order != 1 for unknown in problem.unknowns) or not names:

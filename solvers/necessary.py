@@ -80,10 +80,7 @@ def necessary_conditions(problem: Problem, deadline: float | None = None) -> Nec
     notes: list[str] = []
     try:
         derivation = derive(problem, check)
-        notes += [*derivation.augmented.notes, *limits_left_out(problem)]
-        inner = ", ".join(place.label for place in problem.places[1:-1])
-        if inner:
-            notes.append(f"At {inner} the momenta or costates may jump.")
+        notes += [*derivation.augmented.notes, *limits_left_out(problem), *jumps(problem)]
         for condition in derivation.conditions():
             if condition.kind == "Hamiltonian" and (extreme := extreme_controls(problem, derivation.lowered)):
                 notes.append(extreme)
@@ -129,6 +126,16 @@ def limits_left_out(problem: Problem) -> Iterator[str]:
     if limits:
         named = "; ".join(dict.fromkeys(limits))
         yield f"The equations hold where no limit binds ({named}); where one binds, its multiplier joins."
+
+
+def jumps(problem: Problem) -> Iterator[str]:
+    """Say where the costates need not be continuous."""
+    observed = {id(point.place) for observation in problem.observations for point in observation.points}
+    if observed:
+        yield "At each place of an observation the momenta or costates jump by the slope of the squares there."
+    inner = ", ".join(place.label for place in problem.places[1:-1] if id(place.tree) not in observed)
+    if inner:
+        yield f"At {inner} the momenta or costates may jump."
 
 
 @dataclass(frozen=True)

@@ -147,6 +147,30 @@ class Jump:
 
 
 @dataclass(frozen=True, slots=True)
+class Observed:
+    """A value (SI) that was measured at a place, which is one of `Problem.places`; sigma is 1 where it is not known."""
+
+    place: Node
+    value: float
+    sigma: float = 1.0
+
+
+@dataclass(frozen=True, slots=True)
+class Observation:
+    """What was measured along the curve: the squares of the misfits, over sigma, join the endpoint term.
+
+    `body` is what was measured, a formula of what runs along the curve; `weighted` says that the sigmas are known.
+    """
+
+    body: Node
+    points: tuple[Observed, ...]
+    weighted: bool
+    label: str
+    pointer: str
+    unit: Unit = PLAIN
+
+
+@dataclass(frozen=True, slots=True)
 class Held:
     """A free quantity that stays on its lower (side -1) or upper (side 1) limit along the stretch after a place."""
 
@@ -223,7 +247,7 @@ class Problem:
     unknowns: tuple[Unknown, ...]
     seek: Seek = Seek.MINIMUM
     integrand: Node | None = None
-    endpoint: Node | None = None
+    endpoint: Node | None = None  # without the squares of the observations (see `solvers.observations.terminal`)
     constants: tuple[Constant, ...] = ()
     parameters: tuple[Parameter, ...] = ()
     tables: tuple[Table, ...] = ()  # the trees hold those that they use
@@ -234,6 +258,7 @@ class Problem:
     integrals: tuple[Condition, ...] = ()  # bodies hold `Call("integral", ...)`, may hold `At` and parameters too
     arcs: tuple[Arc, ...] = ()
     jumps: frozenset[Jump] = frozenset()
+    observations: tuple[Observation, ...] = ()
     held: tuple[Held, ...] = ()  # found by the solver, never given by the user
     touches: tuple[Touch, ...] = ()  # the same
     calm: tuple[Calm, ...] = ()  # the same

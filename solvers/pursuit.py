@@ -250,7 +250,8 @@ class _Minimiser:
 
 def first_mesh(stretches: int, count: int = FIRST_INTERVALS) -> Mesh:
     """A coarse mesh; its outermost intervals have Gauss points: no end is touched, none is favoured."""
-    mesh = uniform(stretches, max(count // stretches, 2) if stretches > 1 else count, FIRST_DEGREE)
+    each = count if stretches == 1 else max(count // stretches, 2 if stretches <= count else 1)
+    mesh = uniform(stretches, each, FIRST_DEGREE)
     first, *inner, last = mesh.intervals
     return Mesh((
         interval(first.stretch, 0.0, first.width, Family.GAUSS, FIRST_DEGREE),

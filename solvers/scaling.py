@@ -116,6 +116,10 @@ def _integral_sizes(compiled: Compiled, where: Layout, z: Array) -> Array:
     return np.asarray(where.measures @ np.where(np.isfinite(integrands), integrands, 0.0))
 
 
+EXACT = 1e-4
+"""The least share of the squares that counts as the size of their sum: where a model fits exactly it would vanish."""
+
+
 def find_row_sizes(compiled: Compiled, where: Layout, scales: Scales, z: Array) -> RowSizes:
     """Sizes of the outputs from their slopes at values (SI) on a mesh: how much each changes over the scales."""
     point, end = compiled.point, compiled.end
@@ -129,11 +133,18 @@ def find_row_sizes(compiled: Compiled, where: Layout, scales: Scales, z: Array) 
     n = point.states
     pointwise = slopes[:, n : n + point.constraints]
     value = float(where.measures @ slopes[:, -1]) + float(end_slopes[-1])
+    value = max(value, EXACT * _squares(compiled))
     return RowSizes(
         pointwise=_positive(np.median(pointwise, axis=0)),
         conditions=_positive(end_slopes[:-1]),
         value=value if value > 0 and np.isfinite(value) else 1.0,
     )
+
+
+def _squares(compiled: Compiled) -> float:
+    """The size of the squares of all observations: what they would come to if nothing were fitted."""
+    points = (point for observation in compiled.lowered.problem.observations for point in observation.points)
+    return sum((point.value / point.sigma) ** 2 for point in points)
 
 
 def _row_sums(numbers: Array, rows: list[int], columns: list[int], outputs: int, sizes: Array) -> Array:

@@ -17,6 +17,7 @@ from solvers.layout import Layout
 from solvers.limits import constants_of, interval_of, quantity_bounds
 from solvers.lowering import Quantity
 from solvers.mesh import Mesh
+from solvers.observations import known_values
 from solvers.problem import Unknown
 
 Array = NDArray[np.float64]
@@ -89,7 +90,7 @@ def _bounds(compiled: Compiled) -> dict[Quantity, tuple[float, float]]:
 
 
 def _known_values(compiled: Compiled) -> dict[Quantity, list[tuple[int, float]]]:
-    """Values at places (by index) that conditions fix, or hold away from zero, by quantity."""
+    """Values at places (by index) that conditions fix, or hold away from zero, or that were measured, by quantity."""
     constants = constants_of(compiled)
     known: dict[Quantity, list[tuple[int, float]]] = {}
     for state, place, condition in compiled.fixed:
@@ -97,6 +98,12 @@ def _known_values(compiled: Compiled) -> dict[Quantity, list[tuple[int, float]]]
         if condition.equality or not lower <= 0.0 <= upper:
             value = lower if np.isfinite(lower) else upper
             known.setdefault(compiled.lowered.states[state], []).append((place, value))
+    problem = compiled.lowered.problem
+    ordinals = {id(place.tree): index for index, place in enumerate(problem.places)}
+    for name, order, place_tree, value in known_values(problem):
+        values = known.setdefault((name, order), [])
+        if all(place != ordinals[id(place_tree)] for place, _ in values):
+            values.append((ordinals[id(place_tree)], value))
     return known
 
 

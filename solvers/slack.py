@@ -11,6 +11,7 @@ from collections.abc import Iterator
 from dataclasses import replace
 
 from solvers.formula.nodes import Call, Name, Node, Number, Product, Sum, walk
+from solvers.observations import terminal
 from solvers.problem import Condition, Problem, Seek, Unknown
 
 SLACK = "slack"
@@ -83,7 +84,7 @@ def _replaced(term: Node, kink: Call, slack: Name) -> Node:
 
 def rounded_functions(problem: Problem) -> set[str]:
     """The functions with kinks that are left in the formulas of a problem and so are rounded."""
-    trees = [tree for tree in (problem.integrand, problem.endpoint) if tree is not None]
+    trees = [tree for tree in (problem.integrand, terminal(problem)) if tree is not None]
     trees += [tree for _, tree in problem.where] + [c.body for c in problem.constraints]
     trees += [c.body for c in (*problem.endpoints, *problem.integrals)]
     trees += [side for equation in problem.dynamics for side in (equation.left, equation.right)]

@@ -8,7 +8,8 @@ from enum import Enum
 
 import numpy as np
 
-from solvers.curve import Curve
+from solvers.curve import Array, Curve
+from solvers.units import PLAIN, Unit
 
 
 class Verdict(Enum):
@@ -147,6 +148,43 @@ class ArcCurve:
     costates: Curve | None = None
 
 
+@dataclass(frozen=True, slots=True)
+class Fitted:
+    """One list of observations and what was fitted to it; all arrays have one entry for each point.
+
+    `sigma` is None where the data have none, `normalised` (residual over sigma, or over the spread) where that is
+    nothing, `fitted_sigma` (one sigma of the fitted value) where the data leave something open.
+    """
+
+    label: str
+    pointer: str
+    places: Array
+    observed: Array
+    fitted: Array
+    sigma: Array | None
+    normalised: Array | None
+    fitted_sigma: Array | None
+    unit: Unit = PLAIN
+
+
+@dataclass(frozen=True, slots=True)
+class Fit:
+    """A fit to observations: `squares` is the sum of the squares of the residuals, over sigma where that is known.
+
+    `freedom` is the number of points less that of the numbers determined from them, `spread` the root of squares over
+    freedom; both None where the data leave something open, and so is `covariance` (of the parameters `names`).
+    """
+
+    squares: float
+    points: int
+    freedom: float | None
+    spread: float | None
+    weighted: bool
+    names: tuple[str, ...]
+    covariance: Array | None
+    observations: tuple[Fitted, ...]
+
+
 Watch = Callable[[Progress], bool]
 """Takes each sign of life; True asks the solver to stop at the next iteration."""
 
@@ -195,6 +233,7 @@ class Solution:
     iterations: int = 0
     times: Mapping[str, float] = field(default_factory=dict)  # seconds per stage
     notes: tuple[str, ...] = ()  # what was done that the reader should know: abs smoothed, free ends found, ...
+    fit: Fit | None = None
     extremals: tuple[Extremal, ...] = ()  # what several starts led to, the best (this one) first
 
     @property

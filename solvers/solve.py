@@ -20,6 +20,7 @@ from solvers.curve import Curve
 from solvers.deadline import Deadline, in_seconds
 from solvers.diagnosis import diagnose
 from solvers.extremals import solve_from_starts
+from solvers.fit import fit
 from solvers.functions import compile_problem
 from solvers.gauge import Gauged, in_parametric_form
 from solvers.graph import as_graph, checks_on_graph, prices_of_original, uprights
@@ -233,6 +234,7 @@ def _solution(
         meshes=tuple(pursuit.steps),
         iterations=pursuit.iterations,
         times=times | {"checks": time.perf_counter() - solved_at},
+        fit=fit(path),
         notes=tuple(_notes(problem, pursuit, gauged)),
         switches=_switches(pursuit, gauged),
     )

@@ -82,6 +82,12 @@ def sweep(run_id: str, suffix: str) -> str:
     return f"{api_run(run_id)}/sweep.{suffix}"
 
 
+def observed(run_id: str, suffix: str, number: int = 1) -> str:
+    """The residuals of one list of observations as a table."""
+    path = f"{api_run(run_id)}/observations.{suffix}"
+    return _with_query(path, list=str(number) if number > 1 else "")
+
+
 def _with_query(path: str, **values: str) -> str:
     query = urlencode({name: value for name, value in values.items() if value})
     return f"{path}?{query}" if query else path

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from itertools import chain
 
@@ -17,6 +17,7 @@ from service.assemble.guesses import Guess, check_guess_names, read_guesses, wit
 from service.assemble.meaning import Meaning, read_meaning
 from service.assemble.measured import read_tables
 from service.assemble.names import Kind, declare
+from service.assemble.observing import Readings, check_points, read_observations
 from service.assemble.orders import explicit, find_orders, reach_of
 from service.assemble.placement import misplaced
 from service.assemble.places import Places, find_places, settle
@@ -66,15 +67,18 @@ def assemble(document: Document) -> Problem:
         units.sorts[name] = units.sort_of_all(formulas.definitions[name])
     _check_ends(formulas, units)
     sides = {statement.pointer: convert(statement, units) for statement in _statements(formulas)}
-    value_unit = _value_unit(formulas, units)
+    readings = read_observations(document, formulas, units)
+    value_unit = _value_unit(formulas, units, readings)
     guesses = read_guesses(document, names, formulas, declared, units)
     declared = with_guess(declared, guesses)
     refuse(Stage.UNITS, units.complaints)
 
     stated = (*formulas.endpoints, *formulas.constraints, *(c for arc in formulas.arcs for c in arc.constraints))
     refuse(Stage.CONDITIONS, [found for statement in stated for found in says_nothing(statement, meaning)])
-    places = find_places(formulas, units, dict(declared.parameters))
-    builder = _Builder(document, formulas, meaning, declared, guesses, units, places, sides)
+    check_points(document, readings)
+    where = ((pointer, at) for found in readings for pointer, at in found.places)
+    places = find_places(formulas, units, dict(declared.parameters), where)
+    builder = _Builder(document, formulas, meaning, declared, guesses, units, places, sides, readings)
     problem = covered(builder.problem(value_unit, tuple(measured.tables.values())), formulas, meaning, builder.settle)
     check(problem)
     problem = replace(problem, sweeps=read_sweeps(document, names, declared))
@@ -89,9 +93,10 @@ def _statements(formulas: Formulas) -> chain[Statement]:
 
 def _check_length(document: Document) -> None:
     guesses = [guess for guess in document.guess.values() if isinstance(guess, str)]
+    observed = [observation.of for observation in document.observations]
     of_arcs = (text for arc in document.arcs for text in (*arc.where.values(), *arc.dynamics, *arc.constraints))
     formulas = chain(
-        document.where.values(), document.dynamics, document.endpoints, document.constraints, guesses, of_arcs
+        document.where.values(), document.dynamics, document.endpoints, document.constraints, guesses, of_arcs, observed
     )
     length = sum(len(formula) for formula in formulas)
     if length > LONGEST_TEXT:
@@ -145,8 +150,8 @@ def _check_ends(formulas: Formulas, units: Units) -> None:
         units.place(end.tree, end)
 
 
-def _value_unit(formulas: Formulas, units: Units) -> Unit:
-    """The unit of the functional; its terms have to agree."""
+def _value_unit(formulas: Formulas, units: Units, readings: Sequence[Readings]) -> Unit:
+    """The unit of the functional; its terms have to agree, the squares of observations included."""
     terms: list[tuple[Node, Sort, Expression]] = []
     for integrand in formulas.integrands:
         tree = integrand.tree
@@ -158,6 +163,10 @@ def _value_unit(formulas: Formulas, units: Units) -> Unit:
     for tree, sort, formula in told[1:]:
         units.compare(told[0][:2], (tree, sort), formula)
     measures: list[Measure] = [sort.measure for _, sort, _ in told]
+    for found in readings:
+        measures.append(found.squares)
+        if found.squares.dimension != measures[0].dimension:
+            units.complaints.append(found.clash(measures[0]))
     return shown_unit(measures) if measures else PLAIN
 
 
@@ -173,6 +182,7 @@ class _Builder:
     units: Units
     places: Places
     sides: dict[str, Sides]
+    readings: tuple[Readings, ...]
 
     def problem(self, value_unit: Unit, tables: tuple[Table, ...]) -> Problem:
         traits = self.meaning.traits
@@ -197,6 +207,7 @@ class _Builder:
             endpoints=endpoints,
             constraints=constraints,
             integrals=integrals,
+            observations=tuple(found.record(self.places, self.units) for found in self.readings),
             options=Options(solve.tolerance, solve.time_limit, solve.starts, solve.points),
             independent_unit=self.declared.units[self.meaning.names.independent],
             value_unit=value_unit,

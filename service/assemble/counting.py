@@ -14,6 +14,7 @@ from service.assemble.values import FixedValues
 from service.complaints import Complaint, Refused, Stage, listing, refuse
 from solvers.beside import side_by_side
 from solvers.formula.nodes import At, Name, Node, walk
+from solvers.observations import placed, terminal
 from solvers.problem import Condition, Problem
 
 
@@ -66,7 +67,7 @@ def _pointless(problem: Problem) -> Iterator[Complaint]:
 
 def _unused(problem: Problem, structure: Structure) -> Iterator[Complaint]:
     """Unknowns and parameters that are in no formula."""
-    trees = [tree for tree in (problem.integrand, problem.endpoint) if tree is not None]
+    trees = [tree for tree in (problem.integrand, terminal(problem)) if tree is not None]
     trees += [tree for line in problem.dynamics for tree in (line.left, line.right)]
     trees += [condition.body for condition in (*problem.endpoints, *problem.constraints, *problem.integrals)]
     used = structure.names([*trees, *(place.tree for place in problem.places)])
@@ -116,6 +117,8 @@ def _floating_values(problem: Problem, structure: Structure) -> Iterator[Complai
         yield from found(condition.body, condition.pointer)
     if problem.endpoint is not None:
         yield from found(problem.endpoint, "/functional/endpoint")
+    for observation in problem.observations:
+        yield from found(placed(problem, observation.body, observation.points[0].place), observation.pointer)
 
 
 def _label(problem: Problem, node: Node) -> str:

@@ -82,6 +82,7 @@ class Formulas:
     constraints: tuple[Statement, ...]
     guesses: Mapping[str, Expression]
     arcs: tuple[ArcFormulas, ...] = ()
+    observed: tuple[Expression, ...] = ()  # what was measured
 
     @property
     def integrands(self) -> tuple[Expression, ...]:
@@ -113,6 +114,7 @@ class Formulas:
         yield from self.endpoints
         yield from self.constraints
         yield from (formula for arc in self.arcs for formula in arc.running())
+        yield from self.observed
 
 
 def parse_all(document: Document, names: Names, tables: Tables) -> Formulas:
@@ -163,6 +165,10 @@ def parse_all(document: Document, names: Names, tables: Tables) -> Formulas:
             if isinstance(guess, str | float)
         },
         arcs=tuple(arc(part, "arcs", index) for index, part in enumerate(document.arcs)),
+        observed=tuple(
+            expression(observation.of, "observations", index, "of")
+            for index, observation in enumerate(document.observations)
+        ),
     )
     lines = chain(formulas.dynamics, *(arc.dynamics for arc in formulas.arcs))
     complaints += [found for line in lines for found in _no_equation(line)]

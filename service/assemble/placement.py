@@ -32,6 +32,11 @@ def misplaced(formulas: Formulas, meaning: Meaning) -> Iterator[Complaint]:
         traits = meaning.of(formula.tree)
         if traits.moving and (traits.placed or traits.integral):
             yield from _nonlocal(formula, meaning, "holds at every point because of the other names in it")
+    for observed in formulas.observed:
+        yield from _nonlocal(observed, meaning, "is taken at the place of each point")
+        if meaning.of(observed.tree).fixed:
+            message = "Nothing in this formula depends on the curve or a parameter: there is nothing to fit."
+            yield observed.complaint(observed.tree.span, "says-nothing", message, "Name the unknown that was measured.")
     for any_formula in formulas.all():
         yield from _inside_integral(any_formula, meaning)
         yield from _placed_twice(any_formula, meaning)

@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from bisect import bisect_left
+from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import replace
 
 from service.assemble.chain import unchained
@@ -10,7 +11,7 @@ from service.assemble.dimensions import Units
 from service.assemble.formulas import Expression, Formula, Formulas
 from service.assemble.spots import SAME, Spot, spot_of
 from service.complaints import Complaint, Stage, refuse
-from solvers.formula.nodes import At, Node, Relation, Span, walk
+from solvers.formula.nodes import At, Node, Number, Relation, Span, walk
 from solvers.formula.printer import text
 from solvers.problem import Parameter, Place
 
@@ -32,8 +33,13 @@ class Places:
         return next(index for index, known in enumerate(self.spots) if known.same(spot, self.room))
 
 
-def find_places(formulas: Formulas, units: Units, parameters: dict[str, Parameter]) -> Places:
-    """Every place in order.  Raises `Refused` (stage conditions)."""
+def find_places(
+    formulas: Formulas, units: Units, parameters: dict[str, Parameter], observed: Iterable[tuple[str, float]] = ()
+) -> Places:
+    """Every place in order.  Raises `Refused` (stage conditions).
+
+    `observed` are the places of observations, each with its pointer, in SI.
+    """
     complaints: list[Complaint] = []
     first, last = _spots(formulas.ends, units, parameters)
     refuse(Stage.CONDITIONS, _ends(formulas.ends[1], "The ends", first, last, parameters))
@@ -63,6 +69,7 @@ def find_places(formulas: Formulas, units: Units, parameters: dict[str, Paramete
             continue
         position = sum(_order(known, spot, parameters) is True for known in inner)
         inner.insert(position, spot)
+    complaints += _add_observed(observed, (first, last), inner, room, parameters, units)
     refuse(Stage.CONDITIONS, complaints)
     return Places((first, *inner, last))
 
@@ -98,6 +105,53 @@ def _spots(ends: tuple[Expression, Expression], units: Units, parameters: dict[s
             complaints.append(end.complaint(end.tree.span, "number-range", message, "Choose another unit or number."))
     refuse(Stage.CONDITIONS, complaints)
     return found[0], found[1]
+
+
+def observed_spot(value: float, units: Units) -> Spot:
+    """The spot of a place (SI) where something was measured."""
+    label = f"{value / units.sorts[units.independent].measure.factor:.12g}"
+    return Spot(Place(Number(value, label), label), value, None)
+
+
+def _add_observed(
+    observed: Iterable[tuple[str, float]],
+    ends: tuple[Spot, Spot],
+    inner: list[Spot],
+    room: float,
+    parameters: dict[str, Parameter],
+    units: Units,
+) -> Iterator[Complaint]:
+    """Put the places of observations among the others: there may be many, so they are sorted at once."""
+    first, last = ends
+    fixed = sorted(spot.value for spot in (*ends, *inner) if spot.value is not None)
+    fresh: list[float] = []
+    for where, value in sorted(observed, key=lambda pair: pair[1]):
+        spot = observed_spot(value, units)
+        near = bisect_left(fixed, value)
+        if any(
+            spot.same(Spot(spot.place, known, None), room)
+            for known in (*fixed[max(near - 1, 0) : near + 1], *fresh[-1:])
+        ):
+            continue
+        wrong = _outside(spot, first, last, parameters, units)
+        if wrong:
+            yield Complaint(
+                where, None, "outside", wrong, f"Places lie from {first.place.label} to {last.place.label}."
+            )
+            continue
+        clash = next((known for known in inner if known.name and _order(known, spot, parameters) is None), None)
+        if clash is not None:
+            message = f"Whether {spot.place.label} comes before or after {clash.place.label} is open."
+            hint = f"Bound the parameter by `within` so that it stays on one side of {spot.place.label}."
+            yield Complaint(where, None, "place-order", message, hint)
+            continue
+        fresh.append(value)
+    free = [spot for spot in inner if spot.value is None]
+    spots = [spot for spot in inner if spot.value is not None] + [observed_spot(value, units) for value in fresh]
+    spots.sort(key=lambda spot: spot.value or 0.0)
+    for spot in free:
+        spots.insert(sum(_order(known, spot, parameters) is True for known in spots), spot)
+    inner[:] = spots
 
 
 def _room(spots: Sequence[Spot]) -> float:

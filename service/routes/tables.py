@@ -22,7 +22,7 @@ from web import links
 from web.media_types import TABLES
 
 if TYPE_CHECKING:  # else loaded with the first table, or by `service.later`
-    from web.tables import Table
+    from web.tables import Table, TableError
 
 CSVW_JSON = "application/csvm+json"
 
@@ -121,6 +121,42 @@ def read_sweep(
     return conditional.answer(request, file.write(made), file.media_type, headers=headers)
 
 
+class ListChoice(BaseModel):
+    """Which list of observations."""
+
+    model_config = ConfigDict(extra="forbid")
+
+    list: int = Field(1, description="number of the list of observations, counted from 1")
+
+
+@router.get(
+    "/{id}/observations.{suffix}",
+    summary="Read observations with their residuals as a table",
+    response_model=None,
+    responses=_ANSWERS,
+)
+def read_observations(
+    request: Request,
+    run: TheRun,
+    services: TheServices,
+    suffix: Literal["csv", "json", "xlsx", "npz"],
+    choice: Annotated[ListChoice, Query()],
+) -> Response:
+    """Observed and fitted values, residuals, and standard deviations where they are known; one row for each point."""
+    from web.tables import FILE_FORMATS, TableError, observed_table
+
+    result = result_of(run, services.store)
+    if not result["curve"]:
+        raise Fault("no-curve", "This run ended without a curve; its result document says why.")
+    try:
+        made = observed_table(result, choice.list)
+    except TableError as error:
+        raise _refused(error) from None
+    headers = {"content-disposition": f'attachment; filename="curvewright-{run.id[:8]}-observations.{suffix}"'}
+    file = FILE_FORMATS[suffix]
+    return conditional.answer(request, file.write(made), file.media_type, headers=headers)
+
+
 def _table(run: Run, services: Services, choice: Choice) -> Table:
     from web.tables import TableError, table
 
@@ -133,8 +169,12 @@ def _table(run: Run, services: Services, choice: Choice) -> Table:
     try:
         return table(result, rows=choice.rows, step=choice.step, columns=columns, derivatives=choice.derivatives)
     except TableError as error:
-        complaint = {"in": "query", "code": error.code, "message": error.message, "hint": error.hint}
-        raise Fault("parameters", f"{error.message} {error.hint}", complaints=[complaint]) from None
+        raise _refused(error) from None
+
+
+def _refused(error: TableError) -> Fault:
+    complaint = {"in": "query", "code": error.code, "message": error.message, "hint": error.hint}
+    return Fault("parameters", f"{error.message} {error.hint}", complaints=[complaint])
 
 
 def _answer(request: Request, run: Run, made: Table, suffix: str) -> Response:

@@ -18,6 +18,12 @@ MOST_NAMES = 100
 MOST_RELATIONS = 200
 """Entries of one list of relations."""
 
+MOST_OBSERVATIONS = 20
+"""Lists of observations."""
+
+MOST_OBSERVED = 1_000
+"""Points of one list of observations."""
+
 MOST_POINTS = 5_000
 """Points of one guess."""
 
@@ -97,8 +103,26 @@ class TablePart(Part):
     about: About = ""
 
 
+class ObservationPart(Part):
+    """Measured values along the curve, to which unknowns and parameters are fitted by least squares."""
+
+    of: Formula = Field(description="What was measured: a formula of what runs along the curve", examples=["y", "x*k"])
+    unit: UnitText = ""
+    sigma: Annotated[Number, Field(gt=0)] | None = Field(
+        None, description="One standard deviation of each value, where a point does not give its own"
+    )
+    points: Annotated[
+        tuple[Annotated[tuple[Number, ...], Field(min_length=2, max_length=3)], ...],
+        Field(min_length=1, max_length=MOST_OBSERVED, description="[place, value] or [place, value, sigma]"),
+    ]
+    about: About = ""
+
+
 class FunctionalPart(Part):
-    """What is sought: an extremum of the integral of `integrand` plus the `endpoint` term."""
+    """What is sought: an extremum of the integral of `integrand` plus the `endpoint` term.
+
+    Where something was observed both may be absent: then the squares of the misfits are all that is minimised.
+    """
 
     seek: Literal["minimum", "maximum", "stationary"] = Field(description="The sort of extremum")
     integrand: Formula | None = Field(None, description="Formula under the integral", examples=["y*sqrt(1 + y'^2)"])
@@ -173,7 +197,7 @@ class Document(Part):
     where: Annotated[dict[str, Formula], Field(
         max_length=MOST_NAMES, description="Name -> formula: abbreviations, usable everywhere")] = {}  # fmt: skip
     dynamics: Relations = Field((), description="Differential equations", examples=[["x'' = a", "m*v' + k*v = F"]])
-    functional: FunctionalPart
+    functional: FunctionalPart = FunctionalPart(seek="minimum")
     endpoints: Relations = Field(
         (),
         description="Relations between values at the ends or at places between",
@@ -188,6 +212,9 @@ class Document(Part):
         max_length=MOST_ARCS,
         description="Stretches that follow each other; what has dynamics is continuous where they meet, unless "
         "`endpoints` has the value after a junction, as in `m(t1+) = m(t1-) - shell`")] = ()  # fmt: skip
+    observations: Annotated[tuple[ObservationPart, ...], Field(
+        max_length=MOST_OBSERVATIONS,
+        description="Measured values: the squares of the misfits join the functional")] = ()  # fmt: skip
     guess: Annotated[dict[str, Number | Formula | Points], Field(
         max_length=MOST_NAMES,
         description="Name -> formula or points for an unknown, number for a parameter")] = {}  # fmt: skip
@@ -199,8 +226,9 @@ class Document(Part):
     @model_validator(mode="after")
     def _something_sought(self) -> Self:
         functional = self.functional
-        if functional.integrand is functional.endpoint is None and not any(arc.integrand for arc in self.arcs):
-            raise PydanticCustomError("no_functional", "integrand, endpoint or both are needed")
+        of_arcs = any(arc.integrand for arc in self.arcs)
+        if functional.integrand is functional.endpoint is None and not (of_arcs or self.observations):
+            raise PydanticCustomError("no_functional", "a functional or observations are needed")
         return self
 
     _source: dict[str, Any] = PrivateAttr(default_factory=dict)

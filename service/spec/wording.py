@@ -14,6 +14,7 @@ from service.spec.model import (
     Document,
     FunctionalPart,
     IndependentPart,
+    ObservationPart,
     ParameterPart,
     SolvePart,
     SweepPart,
@@ -90,7 +91,8 @@ def _complaint(place: str, details: list[ErrorDetails]) -> Complaint:
             return Complaint(place, None, "unknown-value", message, f"Write {known}.")
         case "no_functional":
             hint = (
-                'Add "integrand", "endpoint" or both; "endpoint": "0" asks only for a curve that meets all conditions.'
+                'Add "integrand", "endpoint" or both, or observations; "endpoint": "0" asks only for a curve that '
+                "meets all conditions."
             )
             return Complaint(place, None, "no-functional", "Nothing is sought: there is no functional.", hint)
         case "no_sweep":
@@ -116,9 +118,12 @@ def _count(place: str, context: dict[str, Any], given: Any) -> Complaint:
     if place == "/sweep":
         hint = "Sweep the others in a document of their own."
         return Complaint(place, None, "too-many", f"At most {most} constants are swept together.", hint)
-    if least == 2 and most != 2:
+    if least == 2 and most != 2 and not place.startswith("/observations/"):
         hint = "Give two points at least, as in [[0, 1], [3, 2]]."
         return Complaint(place, None, "wrong-length", "One point makes no curve.", hint)
+    if place.startswith("/observations/") and "/points/" in place:
+        hint = "Write [place, value] or [place, value, sigma]."
+        return Complaint(place, None, "wrong-length", "This point has the wrong number of items.", hint)
     if most == 2 and not isinstance(given, dict):
         hint = "Write two items, as in [0, 2]."
         return Complaint(place, None, "wrong-length", "This list has the wrong number of items.", hint)
@@ -133,7 +138,7 @@ def _members(location: tuple[str | int, ...]) -> tuple[str, ...]:
     parts: dict[str, type[BaseModel]] = {
         "independent": IndependentPart, "parameters": ParameterPart, "unknowns": UnknownPart,
         "functional": FunctionalPart, "arcs": ArcPart, "solve": SolvePart, "tables": TablePart,
-        "sweep": SweepPart,
+        "sweep": SweepPart, "observations": ObservationPart,
     }  # fmt: skip
     part = parts[str(location[0])] if location else Document
     return tuple(field.alias or name for name, field in part.model_fields.items())

@@ -16,6 +16,7 @@ from solvers.formula.evaluate import REAL, evaluate
 from solvers.formula.nodes import At, Name, Node
 from solvers.limits import interval_of
 from solvers.lowering import simple_bound
+from solvers.observations import terminal
 from solvers.problem import Condition, Problem, Seek
 from solvers.solution import Check, Status
 
@@ -56,7 +57,7 @@ def obstacles(problem: Problem) -> Iterator[str]:
     for equation in problem.dynamics:
         if not (shape(equation.left).affine and shape(equation.right).affine):
             yield f"'{equation.label}' is not linear"
-    for tree, what in ((problem.integrand, "the integrand"), (problem.endpoint, "the endpoint term")):
+    for tree, what in ((problem.integrand, "the integrand"), (terminal(problem), "the endpoint term")):
         if tree is None:
             continue
         found = shape(tree)

@@ -70,19 +70,46 @@ def mathml(
     return element(fragment(tree, integrals), text(tree) if label is None else label, block=block)
 
 
+@dataclass(frozen=True, slots=True)
+class Misfit:
+    """What was measured along the curve, and whether its sigmas are known."""
+
+    of: Node
+    weighted: bool
+
+    @property
+    def text(self) -> str:
+        """The sum of squares as plain text."""
+        difference = f"{text(self.of)} - measured"
+        return f"sum of (({difference})/sigma)^2" if self.weighted else f"sum of ({difference})^2"
+
+    @property
+    def mathml(self) -> str:
+        """The same as MathML."""
+        difference = f"<mrow><mo>(</mo>{fragment(self.of)}<mo>)</mo><mo>−</mo><mtext>measured</mtext></mrow>"
+        inner = f"<mfrac>{difference}<mi>σ</mi></mfrac>" if self.weighted else difference
+        return f"<mo>∑</mo><msup><mrow><mo>(</mo>{inner}<mo>)</mo></mrow><mn>2</mn></msup>"
+
+
 def functional_mathml(
-    seek: str, integrand: Node | None, endpoint: Node | None, extent: Range, parts: Sequence[tuple[Node, Range]] = ()
+    seek: str,
+    integrand: Node | None,
+    endpoint: Node | None,
+    extent: Range,
+    parts: Sequence[tuple[Node, Range]] = (),
+    misfits: Sequence[Misfit] = (),
 ) -> str:
-    """What is sought: "minimum of" (or "maximum", "stationary") the endpoint term plus the integral, plus integrals
-    over parts of the range.
+    """What is sought: "minimum of" (or "maximum", "stationary") the squares of misfits, the endpoint term and the
+    integral, plus integrals over parts of the range.
     """
     terms = [] if endpoint is None else [endpoint]
     if integrand is not None:
         terms.append(Call("integral", (integrand,)))
-    shown, told = [], []
+    shown, told = [misfit.mathml for misfit in misfits], [misfit.text for misfit in misfits]
     if terms:
         tree = terms[0] if len(terms) == 1 else Sum(tuple(terms), (False, False))
-        shown, told = [fragment(tree, extent)], [text(tree)]
+        shown.append(fragment(tree, extent))
+        told.append(text(tree))
     for part, over in parts:
         shown.append(fragment(Call("integral", (part,)), over))
         told.append(f"integral({text(part)}) from {text(over.start)} to {text(over.end)}")

@@ -148,3 +148,36 @@ def test_a_run_without_a_sweep_says_so(client, line):
     answer = client.get(f"{line['links']['self']}/sweep.csv")
     assert answer.status_code == 409
     assert answer.json()["type"] == "/problems/no-sweep"
+
+
+def test_residuals_of_a_fit_come_as_a_table(client, post):
+    """A mean: y' = 0 through 1, 2 and 6 cm is 3 cm; sigma of the mean sqrt(7/3) cm."""
+    document = {
+        "format": 1,
+        "independent": {"name": "x", "unit": "m", "from": 0, "to": 1},
+        "parameters": {"a": {"unit": "m"}},
+        "unknowns": {"y": {"unit": "m"}},
+        "dynamics": ["y' = 0"],
+        "endpoints": ["y(0) = a"],
+        "observations": [{"of": "y", "unit": "cm", "points": [[0, 1], [0.5, 2], [1, 6]]}],
+    }
+    run = post(document, prefer="wait=60").json()
+    assert run["verdict"] == "global minimum" and run["value_unit"] == "cm^2"
+    heading, rows = _rows(client.get(f"{run['links']['self']}/observations.csv").text)
+    assert heading == ["x [m]", "observed [cm]", "fitted [cm]", "residual [cm]", "fitted sigma [cm]", "normalised"]
+    assert rows[:, 2] == pytest.approx(3) and rows[:, 3] == pytest.approx([-2, -1, 3])
+    fit = client.get(run["links"]["result"]).json()["observations"]
+    assert fit["parameters"]["a"] == {
+        "value": pytest.approx(0.03),
+        "sigma": pytest.approx(0.01 * (7 / 3) ** 0.5),
+        "unit": "m",
+    }
+    body = client.get(f"{run['links']['self']}/observations.npz").content
+    assert READERS["npz"](body) == pytest.approx(rows)
+    refused = client.get(f"{run['links']['self']}/observations.csv?list=2")
+    assert refused.status_code == 422 and refused.json()["complaints"][0]["code"] == "bad-list"
+
+
+def test_a_run_without_observations_has_no_table_of_them(client, line):
+    refused = client.get(f"{line['links']['self']}/observations.csv")
+    assert refused.status_code == 422 and refused.json()["complaints"][0]["code"] == "no-observations"

@@ -1,4 +1,4 @@
-"""Labels of plots."""
+"""Labels of axes and identifiers of figures."""
 
 from __future__ import annotations
 

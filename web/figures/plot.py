@@ -16,7 +16,7 @@ NOTHING: Array = np.empty(0)
 class Trace:
     """One line: `places` and `values` of the same length; NaN lifts the pen.  `number` picks colour and dash.
 
-    `marked` shows the points themselves, `joined` the line between them.
+    `marked` puts a dot on each value, `joined` draws the line between them; `errors` are half lengths of error bars.
     """
 
     label: str
@@ -25,6 +25,11 @@ class Trace:
     number: int = 0
     marked: bool = False
     joined: bool = True
+    errors: Array = field(default_factory=lambda: NOTHING)
+
+    def reach(self) -> tuple[Array, ...]:
+        """The values, and the ends of their error bars."""
+        return (self.values - self.errors, self.values + self.errors) if len(self.errors) else (self.values,)
 
     @property
     def line(self) -> Line:
@@ -63,7 +68,7 @@ class Plot:
     def extent(self) -> tuple[float, float, float, float]:
         """Least and greatest place, least and greatest value over all lines; never of width zero."""
         places = np.concatenate([trace.places for trace in self.traces])
-        values = np.concatenate([trace.values for trace in self.traces])
+        values = np.concatenate([part for trace in self.traces for part in trace.reach()])
         low, high = _widened(values)
         return (*_widened(places), 0.0 if self.from_zero and not self.logarithmic else low, high)
 

@@ -13,6 +13,7 @@ from web.display import number
 from web.extremes import extremes_of
 from web.figures import findings
 from web.figures.labels import bracketed, identifier
+from web.figures.observed import observed_plots
 from web.figures.plot import Plot, Trace
 from web.figures.series import jumps, series
 from web.figures.tabulated import tabulated
@@ -39,6 +40,7 @@ def plots(result: Mapping[str, Any]) -> tuple[Plot, ...]:
         if costates is not None:
             named = {name: f"costate of {name}" for name in trajectory.stored}
             made += _grouped(costates, costates.stored, 0, "costate", "Multipliers", named)
+        made += observed_plots(result, trajectory)
     made += tabulated(result.get("problem") or {})
     made += _extremals(result)
     made += _history(result)

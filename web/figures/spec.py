@@ -14,7 +14,7 @@ import numpy as np
 
 from solvers.curve import Array
 from web.display import LEAST_PLAIN, MOST_PLAIN
-from web.figures.plot import Plot
+from web.figures.plot import Plot, Trace
 from web.figures.ticks import decades, power_of_ten
 
 DIGITS = 7
@@ -33,6 +33,7 @@ def spec(plot: Plot) -> dict[str, Any]:
             "y": _numbers(trace.values),
             "line": {"color": trace.colour, "dash": trace.line.dash, "width": 2.2, "simplify": False},
             "connectgaps": False,
+            **_errors(trace),
             "hovertemplate": f"{_escaped(plot.across)} = %{{x}}<br>{_escaped(trace.label)} = %{{y}}<extra></extra>",
         }
         for trace in plot.traces
@@ -54,6 +55,15 @@ def spec(plot: Plot) -> dict[str, Any]:
             for x in _numbers(plot.rug)
         ]
     return {"data": data, "layout": layout}
+
+
+def _errors(trace: Trace) -> dict[str, Any]:
+    """The dots and error bars of a trace, where it has them."""
+    found: dict[str, Any] = {} if trace.joined else {"marker": {"color": trace.colour, "size": 6}}
+    if len(trace.errors):
+        bars = {"type": "data", "array": _numbers(trace.errors), "color": trace.colour, "thickness": 1.2, "width": 3}
+        found["error_y"] = bars
+    return found
 
 
 def data_block(plot: Plot) -> str:

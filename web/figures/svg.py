@@ -115,9 +115,18 @@ def _line(trace: Trace, across: Scale, up: Scale, logarithmic: bool) -> str:
         pen, last = "L", point
     dash = "" if trace.line.dash == "solid" else f' stroke-dasharray="{trace.line.dash.replace("px", "")}"'
     path = f'<path class="plot-line {trace.colour[2:]}"{dash} d="{"".join(steps)}"/>' if trace.joined else ""
+    if len(trace.errors) and not logarithmic:
+        path += _bars(trace, across, up)
     if trace.marked:
         path += "".join(f'<circle class="plot-dot {trace.colour[2:]}" cx="{x}" cy="{y}" r="3.5"/>' for x, y in dots)
     return path
+
+
+def _bars(trace: Trace, across: Scale, up: Scale) -> str:
+    """Error bars as one path."""
+    rows = zip(trace.places.tolist(), trace.values.tolist(), trace.errors.tolist(), strict=True)
+    steps = [f"M{across(x):.1f} {up(y - e):.1f}V{up(y + e):.1f}" for x, y, e in rows if math.isfinite(y + e)]
+    return f'<path class="plot-bar {trace.colour[2:]}" d="{"".join(steps)}"/>'
 
 
 def _thinned(places: Array, values: Array) -> tuple[Array, Array]:

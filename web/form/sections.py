@@ -211,6 +211,22 @@ SECTIONS = (
         folded=True,
     ),
     Section(
+        "observations",
+        Shape.OBJECTS,
+        "Observations",
+        "Measured values along the curve: the squares of the misfits join what is minimised, so that unknowns and "
+        "parameters are fitted to them. One line for each point: place, value and, if known, its own sigma.",
+        (
+            Column("of", "of", "Measured", Kind.FORMULA, example="y"),
+            _UNIT,
+            Column("sigma", "sigma", "Sigma of each", Kind.VALUE, example="0.2", width="narrow"),
+            Column("points", "points", "Points", Kind.POINTS, example="0.5 1.21"),
+            _ABOUT,
+        ),
+        row="list",
+        folded=True,
+    ),
+    Section(
         "guess",
         Shape.MAP,
         "Guess",
@@ -253,7 +269,7 @@ SECTIONS = (
 
 ORDER = (
     "format", "title", "notes", "independent", "constants", "parameters", "unknowns", "tables", "where", "dynamics",
-    "functional", "endpoints", "constraints", "arcs", "guess", "sweep", "solve",
+    "functional", "endpoints", "constraints", "arcs", "observations", "guess", "sweep", "solve",
 )  # fmt: skip
 """The order of the members in a document that the form writes."""
 

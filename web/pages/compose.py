@@ -259,5 +259,5 @@ def _field(
         mathml=understood(value, tables) if column.kind is Kind.FORMULA else Markup(""),
         long=len(value) > LONG,
         focus=name == draft.focus,
-        lines=max(value.count("\n") + 1, 2) if column.kind in (Kind.LINES, Kind.ENTRIES) else 1,
+        lines=max(value.count("\n") + 1, 2) if column.kind in (Kind.LINES, Kind.ENTRIES, Kind.POINTS) else 1,
     )

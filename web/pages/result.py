@@ -26,6 +26,7 @@ from web.pages.evidence import (
     slopes_of,
 )
 from web.pages.extremals import Found, found_by_starts
+from web.pages.fit import FitView, fit_view
 from web.pages.handover import Preview, citation_of, facts_of, meshes_of, preview_of
 from web.pages.page import Page, told
 from web.pages.reading import Reading, reading_view, understood
@@ -36,9 +37,9 @@ from web.verdicts import tally, verdict_sentence
 
 EXPONENT_SIGNS = "⁰¹²³⁴⁵⁶⁷⁸⁹⁻"
 MAIN_FIGURES = ("curve", "path")
-EXTREMAL_FIGURES = "extremals"
+EXTREMAL_FIGURES, FITTED_FIGURES = "extremals", "observed"
 TABLE_FIGURES = "table-"
-PLACED = (*MAIN_FIGURES, EXTREMAL_FIGURES, TABLE_FIGURES)
+PLACED = (*MAIN_FIGURES, EXTREMAL_FIGURES, FITTED_FIGURES, TABLE_FIGURES)
 
 Pairs = tuple[tuple[str, str], ...]
 Rows = tuple[tuple[str, ...], ...]
@@ -63,6 +64,8 @@ class ResultPage(Page):
     parameters: Rows = told("Name, value with unit, meaning of each parameter found.")
     diagnosis: Diagnosis | None = told("Why there is no full result; None where there is one.")
     main_figures: tuple[Figure, ...] = told("The curve itself.")
+    fitted: FitView | None = told("The fit to observations; None where nothing was observed.")
+    fitted_figures: tuple[Figure, ...] = told("The observations over the curve, and their residuals.")
     extremals: tuple[Found, ...] = told("What several starts led to; empty for one start.")
     extremal_figures: tuple[Figure, ...] = told("These curves over each other.")
     table_figures: tuple[Figure, ...] = told("Measured tables with the curves through their points.")
@@ -101,7 +104,7 @@ def result_page(
     problem = result.get("problem") or {}
     checks = result.get("checks") or []
     verdict = result.get("verdict") or ""
-    seek = str((problem.get("functional") or {}).get("seek") or "")
+    seek = str((problem.get("functional") or {"seek": "minimum"}).get("seek") or "")
     drawn = figures(result)
     run_id = str(result.get("id") or "")
     sweep = sweep_of(result, run_id)
@@ -122,6 +125,8 @@ def result_page(
         parameters=parameters_of(result),
         diagnosis=diagnosis_of(result),
         main_figures=tuple(figure for figure in drawn if figure.key.startswith(MAIN_FIGURES)),
+        fitted=fit_view(result, run_id),
+        fitted_figures=tuple(figure for figure in drawn if figure.key.startswith(FITTED_FIGURES)),
         extremals=found_by_starts(result),
         extremal_figures=tuple(figure for figure in drawn if figure.key.startswith(EXTREMAL_FIGURES)),
         table_figures=tuple(figure for figure in drawn if figure.key.startswith(TABLE_FIGURES)),

@@ -9,6 +9,7 @@ from web.tables.columns import Column
 from web.tables.csv import to_csv, to_csvw, to_json
 from web.tables.error import TableError
 from web.tables.npz import to_npz
+from web.tables.observed import observed_table
 from web.tables.places import MOST_ROWS
 from web.tables.sampling import Table, table
 from web.tables.sweep import sweep_table
@@ -21,6 +22,7 @@ __all__ = [
     "FileFormat",
     "Table",
     "TableError",
+    "observed_table",
     "read_choice",
     "sweep_table",
     "table",

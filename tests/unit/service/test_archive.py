@@ -16,6 +16,8 @@ from solvers.solution import (
     Diagnosis,
     Extremal,
     Finding,
+    Fit,
+    Fitted,
     MeshStep,
     Price,
     Slope,
@@ -252,3 +254,28 @@ def test_what_several_starts_led_to_is_told_in_the_users_units():
     assert second["parameters"] == {"T": {"value": pytest.approx(300), "unit": "ms"}}
     assert second["starts"] == ["x with 1 half wave up", "Sobol point 1"]
     assert _archived(SOLVED)["extremals"] == []
+
+
+def test_a_fit_is_told_in_the_users_units():
+    """SI: T = 0.3 s with a variance of 4e-4 s^2, x in m."""
+    at = np.array([0.1, 0.2])
+    seen = Fitted(
+        "x", "/observations/0/of", at, at + 1, at + 0.9, None, np.array([1.0, -1.0]), np.array([0.1, 0.2]), MM
+    )
+    fit = Fit(0.04, 2, 1.0, 0.2, False, ("T", "switch 1"), np.array([[4e-4, 1.0], [1.0, 9.0]]), (seen,))
+    found = _archived(replace(SOLVED, fit=fit))["observations"]
+    assert found["parameters"]["T"] == {"value": pytest.approx(300), "sigma": pytest.approx(20), "unit": "ms"}
+    assert found["covariance"] == [[pytest.approx(400)]]  # what the solver has added is none of the user's
+    assert (found["sum_of_squares"], found["spread"], found["unit"]) == (pytest.approx(4e4), pytest.approx(200), "mm")
+    assert (found["points"], found["degrees_of_freedom"], found["sigmas_known"]) == (2, 1.0, False)
+    (one,) = found["lists"]
+    assert (one["of"], one["unit"], one["sigma"]) == ("x", "mm", None)
+    assert one["place"] == pytest.approx([100, 200])
+    assert one["observed"] == pytest.approx([1100, 1200])
+    assert one["residual"] == pytest.approx([100, 100])
+    assert one["normalised"] == [1, -1]
+    assert one["fitted_sigma"] == pytest.approx([100, 200])
+    weighted = _archived(replace(SOLVED, fit=replace(fit, weighted=True, covariance=None)))["observations"]
+    assert (weighted["unit"], weighted["spread"], weighted["covariance"]) == ("", 0.2, None)
+    assert weighted["parameters"]["T"]["sigma"] is None
+    assert _archived()["observations"] is None

@@ -252,6 +252,40 @@ def several_document() -> dict[str, Any]:
     return document | {"id": "hose-0003", "extremals": found}
 
 
+def fitted_document() -> dict[str, Any]:
+    """The hose with readings of its height in cm at three places, 1 and 2 cm off."""
+    document = hose_document()
+    (hose_arc,) = document["curve"]["arcs"]
+    places = [0.5, 1.5, 2.5]
+    heights = [100 * _at(hose_arc, "y", place) for place in places]
+    observed = [height + off for height, off in zip(heights, (1.0, -2.0, 1.0), strict=True)]
+    listed = {
+        "of": "y", "pointer": "/observations/0/of", "unit": "cm", "place": places, "observed": observed,
+        "fitted": heights, "residual": [1.0, -2.0, 1.0], "sigma": None, "normalised": [0.5, -1.0, 0.5],
+        "fitted_sigma": [0.4, 0.3, 0.4],
+    }  # fmt: skip
+    fit = {
+        "points": 3, "sigmas_known": False, "sum_of_squares": 6.0,
+        "degrees_of_freedom": 1.5, "spread": 2.0, "unit": "cm",
+        "parameters": {
+            "a": {"value": 2.0, "sigma": 0.1, "unit": "m"},
+            "b": {"value": -4.0, "sigma": None, "unit": ""},
+            "c": {"value": 0.0, "sigma": 0.3, "unit": "1/m"},
+        },
+        "covariance": [[0.01, 0.0, -0.015], [0.0, 0.0, 0.0], [-0.015, 0.0, 0.09]],
+        "lists": [listed, listed | {"of": "2*y", "sigma": [1.0, 2.0, 1.0]}],
+    }  # fmt: skip
+    return document | {"id": "hose-0004", "observations": fit}
+
+
+def _at(one_arc: dict[str, Any], name: str, place: float) -> float:
+    """The value of a function on an arc."""
+    breaks = one_arc["breaks"]
+    k = next(k for k in range(len(breaks) - 1) if place <= breaks[k + 1])
+    local = (2 * place - breaks[k] - breaks[k + 1]) / (breaks[k + 1] - breaks[k])
+    return float(legendre.legval(local, one_arc["functions"][name][k]))
+
+
 def infeasible_document() -> dict[str, Any]:
     """A hose that is shorter than the distance of its hooks."""
     document = hose_document()
@@ -340,6 +374,12 @@ def vehicle() -> dict[str, Any]:
 def several() -> dict[str, Any]:
     """Two curves found from several starts."""
     return several_document()
+
+
+@pytest.fixture
+def fitted() -> dict[str, Any]:
+    """A fit to two lists of observations."""
+    return fitted_document()
 
 
 @pytest.fixture

@@ -46,7 +46,7 @@ class Outline(HTMLParser):
             assert self.open.pop() == tag
 
 
-@pytest.mark.parametrize("name", ["hose", "stage", "vehicle", "infeasible", "out_of_time", "several"])
+@pytest.mark.parametrize("name", ["hose", "stage", "vehicle", "infeasible", "out_of_time", "several", "fitted"])
 def test_every_page_is_well_formed_with_unique_ids_and_headings_in_order(name, request):
     outline = Outline(render(page(request.getfixturevalue(name))))
     assert outline.open == []
@@ -216,3 +216,38 @@ def test_without_tolerances_there_is_no_band(hose):
     assert shown.value_band == ""
     assert "one standard deviation" not in render(shown)
     assert "What the value depends on" not in render(page({**hose, "band": None, "slopes": []}))
+
+
+def test_a_fit_is_told_with_sigmas_correlations_figures_and_files(fitted, hose):
+    made = page(fitted)
+    assert made.fitted.sentence == (
+        "3 observations, sum of squares 6\N{NO-BREAK SPACE}cm² over 1.5 degrees of freedom: "
+        "the residuals spread by 2\N{NO-BREAK SPACE}cm."
+    )
+    assert made.fitted.parameters[0] == ("a", "2\N{NO-BREAK SPACE}m", "0.1\N{NO-BREAK SPACE}m", "5 %")
+    assert made.fitted.parameters[1][2:] == ("not known", "—")
+    assert made.fitted.parameters[2][3] == "—"  # relative to nothing
+    assert made.fitted.correlations[0] == ("a", "1", "—", "−0.5")
+    assert "what is minimised" not in made.fitted.method and "all that is minimised" in made.fitted.method
+    assert [figure.key for figure in made.fitted_figures] == [
+        "observed-1", "observed-1-residuals", "observed-2", "observed-2-residuals",
+    ]  # fmt: skip
+    over = made.fitted_figures[0]
+    assert over.still.count("<circle") == 3 + 1  # one in the legend
+    assert "plot-bar" in over.still
+    assert "−1 spreads, at x = 1.5" in made.fitted_figures[1].finding
+    assert [address for _, files in made.fitted.files for _, address in files][::4] == [
+        "/api/v1/runs/hose-0004/observations.csv", "/api/v1/runs/hose-0004/observations.csv?list=2",
+    ]  # fmt: skip
+    text = render(made)
+    assert text.index('id="curve"') < text.index('id="observations"') < text.index('id="checks"')
+    assert page(hose).fitted is None and page(hose).fitted_figures == ()
+
+
+def test_what_leaves_something_open_is_told_without_sigmas(fitted):
+    fit = fitted["observations"] | {"degrees_of_freedom": None, "spread": None, "covariance": None}
+    fit["lists"] = [one | {"normalised": None, "fitted_sigma": None} for one in fit["lists"]]
+    made = page(fitted | {"observations": fit})
+    assert "leave something open" in made.fitted.sentence
+    assert made.fitted.correlations == ()
+    assert [figure.key for figure in made.fitted_figures] == ["observed-1", "observed-2"]

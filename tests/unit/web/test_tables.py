@@ -8,7 +8,7 @@ import numpy as np
 import pytest
 
 from web.extremes import extremes
-from web.tables import MOST_ROWS, TableError, table
+from web.tables import MOST_ROWS, TableError, observed_table, table
 from web.tables.places import even_places, nodes, stepped_places
 from web.trajectory import read_trajectory
 from web.unit_text import per
@@ -171,3 +171,24 @@ def test_extremes_are_found_between_the_nodes_and_on_both_sides_of_a_jump(hose, 
     assert (lines["y"].largest, lines["y"].largest_at) == (pytest.approx(2.4), 3.0)
     jump = {line.name: line for line in extremes(stage)}["a"]
     assert (jump.lowest, jump.highest) == (pytest.approx(-2000), pytest.approx(2000))
+
+
+def test_observations_are_a_table_of_their_own(fitted):
+    made = observed_table(fitted, 2)
+    assert made.headings == (
+        "x [m]", "observed [cm]", "fitted [cm]", "residual [cm]", "sigma [cm]", "fitted sigma [cm]", "normalised",
+    )  # fmt: skip
+    assert made.rows[:, 3].tolist() == [1, -2, 1]
+    assert len(observed_table(fitted).columns) == 6  # without sigmas there is no column for them
+    assert dict(made.record)["run"] == "hose-0004"
+
+
+@pytest.mark.parametrize("number", [0, 3])
+def test_a_list_of_observations_that_is_not_there_is_refused(fitted, number):
+    with pytest.raises(TableError, match="no list"):
+        observed_table(fitted, number)
+
+
+def test_a_result_without_observations_has_no_table_of_them(hose):
+    with pytest.raises(TableError, match="Nothing was observed"):
+        observed_table(hose)

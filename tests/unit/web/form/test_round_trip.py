@@ -40,6 +40,14 @@ def test_every_sample_survives_the_form(name):
         pytest.param({"format": 1, "unknowns": ["y"]}, id="a list where names belong"),
         pytest.param({"format": 1, "dynamics": ["x' = u", 5]}, id="a number where a formula belongs"),
         pytest.param({"format": 1, "guess": {"y": [[0, 1], [2, 3]], "T": 2.5}}, id="points and numbers"),
+        pytest.param(
+            {"format": 1, "observations": [{"of": "y", "points": [[0, 1.5], [2, 3, 0.1]]}]}, id="points in lines"
+        ),
+        pytest.param({"format": 1, "observations": [{"of": "y", "points": [[0, "1"]]}]}, id="a text in a point"),
+        pytest.param({"format": 1, "observations": [{"of": "y", "points": [[], 3]}]}, id="points that are none"),
+        pytest.param({"format": 1, "observations": [{"of": "y", "colour": "red", "sigma": 2.0}]}, id="a strange part"),
+        pytest.param({"format": 1, "observations": [{}]}, id="an empty list of observations"),
+        pytest.param({"format": 1, "observations": {"of": "y"}}, id="an object where a list belongs"),
         pytest.param({"format": 1, "functional": {"seek": "least"}}, id="a strange choice"),
         pytest.param({"format": 1, "title": 7, "notes": None}, id="no texts"),
         pytest.param({"format": 1, "constants": {"a/b~c": "3 m"}}, id="a name that pointers escape"),
@@ -109,3 +117,18 @@ def test_text_is_a_number_only_where_json_would_agree(text, value):
 @given(anything)
 def test_pretty_text_is_the_same_document(value):
     assert json.loads(pretty(value)) == value
+
+
+@pytest.mark.parametrize(
+    "text",
+    ["0.5 1.21\n1 2.5 0.1", "0.5\t1.21\n1\t2.5\t0.1\n", "0.5, 1.21\n\n1;2.5;0.1", "[[0.5, 1.21], [1, 2.5, 0.1]]"],
+)
+def test_points_can_be_pasted_from_a_table(text):
+    fields = {"observations.0.of": "y", "observations.0.points": text}
+    assert document_from_form(fields)["observations"] == [{"of": "y", "points": [[0.5, 1.21], [1, 2.5, 0.1]]}]
+
+
+def test_points_that_are_no_numbers_stay_text_and_are_found_by_their_pointer():
+    reading = read_form({"observations.1.of": "y", "observations.1.points": "0.5 high"})
+    assert reading.document["observations"] == [{"of": "y", "points": "0.5 high"}]
+    assert reading.places["/observations/0/points"] == "observations.1.points"
