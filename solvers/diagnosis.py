@@ -5,12 +5,15 @@ from __future__ import annotations
 from solvers.pursuit import End, Pursuit
 from solvers.solution import Diagnosis
 
+KEPT = "The best curve so far is kept"
+NOTHING_KEPT = "No curve had been found by then"
+
 _SENTENCES = {
-    End.TIME: "The time limit was reached before the tolerance. The best curve so far is kept; raise "
+    End.TIME: f"The time limit was reached before the tolerance. {KEPT}; raise "
     "`solve.time_limit`, loosen `solve.tolerance` or give a guess.",
-    End.POINTS: "The limit on points was reached before the tolerance. The best curve so far is kept; the curve may "
+    End.POINTS: f"The limit on points was reached before the tolerance. {KEPT}; the curve may "
     "have more corners or layers than `solve.points` allows.",
-    End.STOPPED: "The run was stopped. The best curve so far is kept.",
+    End.STOPPED: f"The run was stopped. {KEPT}.",
     End.UNBOUNDED: "The value runs away: within the conditions it can be made better without limit, so there is no "
     "optimum. A bound on an unknown or one more condition may be missing.",
     End.TORN: "The curve degenerates: the better it gets, the nearer it comes to one that is no continuous function; "
@@ -37,4 +40,6 @@ def diagnose(pursuit: Pursuit) -> Diagnosis | None:
         )
     else:
         sentence = _SENTENCES[pursuit.end]
+        if not pursuit.solved:
+            sentence = sentence.replace(KEPT, NOTHING_KEPT)
     return Diagnosis(pursuit.end.value, sentence, findings)

@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from solvers.deadline import Deadline
-from solvers.entries import Entries, Pattern
+from solvers.entries import Entries
 from solvers.ipopt import LEAST_SQUARES_MULTIPLIERS, Iterate, Minimum, Start, minimise
 from solvers.lowering import Quantity, primed
 from solvers.solution import Finding
@@ -23,6 +23,14 @@ from solvers.transcription import Program
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]
+
+
+SETTINGS = LEAST_SQUARES_MULTIPLIERS | {"ipopt.tol": 1e-8, "ipopt.acceptable_tol": 1e-5, "ipopt.max_iter": 300}
+"""What conflicts is named to some digits."""
+
+
+PULL = 1e-4
+"""Weight of the distance from the start: small enough that what can be met is met, it makes the curve the only one."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -60,8 +68,8 @@ class _Numbers:
     """Its numbers; its rows are the hard rows of g, the relaxed ones plus and minus their slack, held z the same."""
 
     def __init__(self, program: Program, hard: Indices, relaxed: Indices, held: Indices, owners: Indices,
-                 signs: Array, slacks: int) -> None:  # fmt: skip
-        self._inner, self._size, self._slacks = program.numbers, program.layout.size, slacks
+                 signs: Array, slacks: int, start: Array) -> None:  # fmt: skip
+        self._inner, self._size, self._slacks, self._start = program.numbers, program.layout.size, slacks, start
         self._hard, self._relaxed, self._held, self._owners, self._signs = hard, relaxed, held, owners, signs
         h, m, k = len(hard), len(relaxed), len(held)
         inner, entries = self._inner.jacobian_pattern, Entries()
@@ -74,16 +82,18 @@ class _Numbers:
         entries.add(h + np.arange(len(owners)), self._size + owners, signs)
         size = self._size + slacks
         self._jacobian = entries.recipe((h + 2 * (m + k), size))
+        curved, entries, diagonal = self._inner.hessian_pattern, Entries(), np.arange(self._size)
+        entries.add(curved.rows, curved.columns(), 1.0, np.arange(len(curved.rows)))
+        entries.add(diagonal, diagonal, PULL, len(curved.rows))
+        self._hessian = entries.recipe((size, size))
         self.jacobian_pattern = self._jacobian.pattern
-        curved = self._inner.hessian_pattern
-        starts = np.append(curved.starts, np.full(slacks, curved.starts[-1]))
-        self.hessian_pattern = Pattern((size, size), curved.rows, starts)
+        self.hessian_pattern = self._hessian.pattern
 
     def value(self, w: Array) -> float:
-        return float(w[self._size :].sum())
+        return float(w[self._size :].sum() + PULL / 2 * np.sum((w[: self._size] - self._start) ** 2))
 
     def gradient(self, w: Array) -> Array:
-        return np.concatenate([np.zeros(self._size), np.ones(self._slacks)])
+        return np.concatenate([PULL * (w[: self._size] - self._start), np.ones(self._slacks)])
 
     def constraints(self, w: Array) -> Array:
         z, slack = w[: self._size], w[self._size :]
@@ -99,7 +109,7 @@ class _Numbers:
         h, m = len(self._hard), len(self._relaxed)
         weights[self._hard] = weight_g[:h]
         weights[self._relaxed] = weight_g[h : h + m] + weight_g[h + m : h + 2 * m]
-        return self._inner.hessian(w[: self._size], 0.0, weights)
+        return self._hessian.nonzeros(np.append(self._inner.hessian(w[: self._size], 0.0, weights), weight_f))
 
 
 def groups(program: Program) -> list[Group]:
@@ -168,10 +178,10 @@ def least_violation(
         upper=np.concatenate([upper, np.full(len(parts), infinite)]),
         row_lower=row_lower,
         row_upper=row_upper,
-        numbers=_Numbers(program, hard, relaxed, held, owners, signs, len(parts)),
+        numbers=_Numbers(program, hard, relaxed, held, owners, signs, len(parts), z),
     )
     start = np.concatenate([z, np.ones(len(parts))])
-    minimum = minimise(elastic, Start(start), deadline=deadline, watch=watch, options=LEAST_SQUARES_MULTIPLIERS)
+    minimum = minimise(elastic, Start(start), deadline=deadline, watch=watch, options=SETTINGS)
     answer, amounts = minimum.z[:size], minimum.z[size:]
     findings = _findings(program, parts, owner_of_variable, answer, amounts)
     return LeastViolation(answer, float(np.sum(amounts[amounts > 1e-7])), findings, minimum)

@@ -280,23 +280,28 @@ def _begin(pursuit: Pursuit, minimise_: _Minimiser) -> tuple[Program, Minimum] |
         where = layout(compiled, mesh)
         for guess in guesses(compiled, mesh, where)[: 2 if attempt else 3]:
             program = _program(compiled, mesh, where, guess.z)
-            minimum = minimise_(program, Start(guess.z / program.scale), options)
+            doubtful = {"ipopt.max_iter": FEW_ITERATIONS} if End.INFEASIBLE in ends else {}
+            minimum = minimise_(program, Start(guess.z / program.scale), options | doubtful)
             if minimum.outcome in SOLVED:
                 return program, minimum
             ends.append(_end_of(minimum))
             if ends[-1] in (End.STOPPED, End.TIME):
                 pursuit.end = ends[-1]
                 return None
-    mesh = first_mesh(stretches)
-    where = layout(compiled, mesh)
-    guess = guesses(compiled, mesh, where)[0]
+        if attempt == 0 and End.INFEASIBLE in ends:  # to find out is quicker than to fail with other settings
+            begun = _after_least_violation(pursuit, minimise_)
+            if begun is not None or pursuit.end in (End.INFEASIBLE, End.STOPPED, End.TIME):
+                return begun
     if set(ends) == {End.UNDEFINED}:
-        pursuit.end, pursuit.findings = End.UNDEFINED, undefined_places(compiled, where, guess.z)
+        mesh = first_mesh(stretches)
+        where = layout(compiled, mesh)
+        z = guesses(compiled, mesh, where)[0].z
+        pursuit.end, pursuit.findings = End.UNDEFINED, undefined_places(compiled, where, z)
         return None
     if End.UNBOUNDED in ends:
         pursuit.end = End.UNBOUNDED
         return None
-    return _after_least_violation(pursuit, minimise_, _program(compiled, mesh, where, guess.z), guess.z)
+    return _after_least_violation(pursuit, minimise_)
 
 
 def _begin_from(
@@ -319,10 +324,12 @@ def _begin_from(
     return None
 
 
-def _after_least_violation(
-    pursuit: Pursuit, minimise_: _Minimiser, program: Program, z: Array
-) -> tuple[Program, Minimum] | None:
+def _after_least_violation(pursuit: Pursuit, minimise_: _Minimiser) -> tuple[Program, Minimum] | None:
     """Find out whether any curve satisfies the conditions; start again from one that does."""
+    mesh = first_mesh(len(pursuit.problem.places) - 1)
+    where = layout(pursuit.compiled, mesh)
+    z = guesses(pursuit.compiled, mesh, where)[0].z
+    program = _program(pursuit.compiled, mesh, where, z)
     least = minimise_.relax(program, z / program.scale)
     if least.minimum.outcome not in SOLVED:
         pursuit.end = _end_of(least.minimum)
