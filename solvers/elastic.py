@@ -65,7 +65,9 @@ class _Elastic:
 
 
 class _Numbers:
-    """Its numbers; its rows are the hard rows of g, the relaxed ones plus and minus their slack, held z the same."""
+    """Its numbers.  Rows: the hard ones of g, the relaxed ones plus and minus their slack, held z the same.  Variables: z
+    and the slacks; f is the sum of the slacks and the pull to the start.
+    """
 
     def __init__(self, program: Program, hard: Indices, relaxed: Indices, held: Indices, owners: Indices,
                  signs: Array, slacks: int, start: Array) -> None:  # fmt: skip
@@ -73,9 +75,9 @@ class _Numbers:
         self._hard, self._relaxed, self._held, self._owners, self._signs = hard, relaxed, held, owners, signs
         h, m, k = len(hard), len(relaxed), len(held)
         inner, entries = self._inner.jacobian_pattern, Entries()
-        for own, start in ((hard, 0), (relaxed, h), (relaxed, h + m)):
+        for own, at in ((hard, 0), (relaxed, h), (relaxed, h + m)):
             row = np.full(inner.shape[0], -1)
-            row[own] = start + np.arange(len(own))
+            row[own] = at + np.arange(len(own))
             kept = np.flatnonzero(row[inner.rows] >= 0)
             entries.add(row[inner.rows[kept]], inner.columns()[kept], 1.0, kept)
         entries.add(h + 2 * m + np.arange(2 * k), np.tile(held, 2), 1.0)
