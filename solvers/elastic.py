@@ -65,8 +65,10 @@ class _Elastic:
 
 
 class _Numbers:
-    """Its numbers.  Rows: the hard ones of g, the relaxed ones plus and minus their slack, held z the same.  Variables: z
-    and the slacks; f is the sum of the slacks and the pull to the start.
+    """Its numbers: f is the sum of the slacks and the pull to the start.
+
+    Its variables are z and the slacks; its rows the hard ones of g, the relaxed ones plus and minus their slack, and
+    held z the same.
     """
 
     def __init__(self, program: Program, hard: Indices, relaxed: Indices, held: Indices, owners: Indices,
