@@ -55,8 +55,9 @@ def sketch(compiled: Compiled, mesh: Mesh, where: Layout, places: Array, paramet
     for turn, unknown in enumerate(problem.unknowns):
         if unknown.guess is not None:
             rows = [given_values(unknown.guess, grid, numbers, problem.independent)]
-            for _ in range(unknown.order):
-                rows.append(np.gradient(rows[-1], grid))
+            for order in range(1, unknown.order + 1):
+                lines = order == 1 and isinstance(unknown.guess, tuple)
+                rows.append(_slopes(unknown.guess, grid) if lines else np.gradient(rows[-1], grid))
         else:
             rows = _lines(unknown, grid, places, known, between(*bounds[unknown.name, 0]))
         if bend.size and unknown.order and (unknown.guess is None or unknown.sketched):
@@ -171,6 +172,19 @@ def _vary(
         for order, row in enumerate(rows):
             wave = np.sin(waves * way / span + phase + order * np.pi / 2)
             rows[order] = row + amplitude * size * (waves / span) ** order * wave
+
+
+def _slopes(guess: Node | tuple[tuple[float, float], ...], grid: Array) -> Array:
+    """The slopes of the lines through given points; at a point that of the line before it, beyond them none."""
+    places, values = np.array(guess, dtype=float).T
+    if len(places) < 2:
+        return np.zeros_like(grid)
+    rounding = 1e-12 * float(np.ptp(places))
+    line = np.clip(np.searchsorted(places + rounding, grid, side="left") - 1, 0, len(places) - 2)
+    widths = np.diff(places)
+    slopes = np.diff(values) / np.where(widths > 0, widths, 1.0)
+    inside = (grid >= places[0] - rounding) & (grid <= places[-1] + rounding)
+    return np.where(inside, slopes[line], 0.0)
 
 
 def given_values(

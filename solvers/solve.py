@@ -13,6 +13,7 @@ import numpy as np
 from solvers import checks
 from solvers.arc_guess import with_sketches
 from solvers.beside import side_by_side
+from solvers.broken import with_corner
 from solvers.chatter import chatter
 from solvers.checks import lower_bound
 from solvers.checks.redundancy import unambiguous
@@ -122,7 +123,8 @@ def _found(problem: Problem, watch: Watch | None, deadline: Deadline) -> Found:
         pursuit = _in_given_form(with_slacks(gauged.problem), watch, deadline)
         if (pursuit.solved and pursuit.end is not End.TORN) or pursuit.end in (End.STOPPED, End.TIME):
             return Found(pursuit, gauged)
-    return Found(_in_given_form(with_slacks(problem), watch, deadline), None)
+    pursuit = _in_given_form(with_slacks(problem), watch, deadline)
+    return Found(with_corner(pursuit, watch, deadline) or pursuit, None)
 
 
 def _in_given_form(problem: Problem, watch: Watch | None, deadline: Deadline) -> Pursuit:
@@ -256,7 +258,8 @@ def _about_switches(problem: Problem, found: Solution) -> str:
         return ""
     unit = f" {problem.independent_unit.text}" if problem.independent_unit.text else ""
     listed = ", ".join(f"{switch.place / problem.independent_unit.factor:.9g}" for switch in found.switches)
-    return f"Switches were found and made unknowns of the problem: {problem.independent} = {listed}{unit}."
+    word = "Switches" if any(switch.of for switch in found.switches) else "Corners"
+    return f"{word} were found and made unknowns of the problem: {problem.independent} = {listed}{unit}."
 
 
 def _with_uprights(pursuit: Pursuit, gauged: Gauged) -> Pursuit:

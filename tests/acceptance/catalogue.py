@@ -10,16 +10,12 @@ CATALOGUE: dict[str, Case] = {
 }
 """All cases by id, in order."""
 
-_RELAXED = "the minimum has corners at places that are free to choose; the search ends at the smooth stationary line"
 
 _WHERE_LIMITS_END = (
     "where the limit begins and ceases to bind the multiplier is found to three digits only: stationarity just fails"
 )
 
 KNOWN_FAILURES: dict[tuple[str, str], str] = {
-    ("A46", "value"): _RELAXED,
-    ("A46", "error"): _RELAXED,
-    ("A46", "verdict"): _RELAXED,
     ("A56a", "verdict"): "the tip of the fin is singular, and the second variation is not decided there",
     ("B04a", "verdict"): _WHERE_LIMITS_END,
     ("B37", "verdict"): "the second variation is not decided along the limit of the control",

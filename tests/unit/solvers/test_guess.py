@@ -6,7 +6,7 @@ import pytest
 from solvers.guess import guesses
 from solvers.layout import layout
 from solvers.mesh import uniform
-from solvers.sketch import Bend, sketch
+from solvers.sketch import Bend, _slopes, sketch
 from tests.unit.solvers.problems import LEAST_TIME, compiled, shape, stated
 
 
@@ -194,3 +194,10 @@ def test_integrals_have_the_values_of_the_curve():
 def test_everything_is_finite_even_where_the_problem_is_not():
     found = Guessed(shape(functional={"integrand": "1/(y - y)*y'^2"}, endpoints=["y(0) = 0", "y(3) = 1"]))
     assert all(np.all(np.isfinite(guess.z)) for guess in found.all)
+
+
+def test_the_slopes_of_given_points_are_those_of_their_lines():
+    """At a corner the line before it speaks, as Radau points stand at right ends."""
+    slopes = _slopes(((0.0, 0.0), (1.0, 2.0), (3.0, 1.0)), np.array([-1.0, 0.0, 0.5, 1.0, 1.5, 3.0, 4.0]))
+    np.testing.assert_allclose(slopes, [0.0, 2.0, 2.0, 2.0, -0.5, -0.5, 0.0])
+    np.testing.assert_allclose(_slopes(((0.0, 5.0),), np.array([0.0, 1.0])), 0.0)
