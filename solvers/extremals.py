@@ -3,6 +3,9 @@
 Two starts have led to the same extremal where values and curves agree within their errors: the value alone would take
 an elastica that bends to the left for the one that bends to the right.  The distance of two curves is the mean square
 of their difference over the whole range, in which an unknown counts relative to its size.
+
+The starts are made one after the other, in the run's own process: its limits of time and memory, its soft stop and its
+kill then hold for all of them together, and no run takes the place of others that wait.
 """
 
 from __future__ import annotations

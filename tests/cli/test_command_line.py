@@ -226,3 +226,21 @@ def _until(condition, seconds=60):
 def _serving(*options):
     command = [sys.executable, "-m", "service", "serve", "--workers", "1", *map(str, options)]
     return subprocess.Popen(command, stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True)
+
+
+def test_a_fit_and_what_other_starts_found_are_told():
+    document = {
+        "format": 1,
+        "independent": {"name": "x", "unit": "m", "from": 0, "to": 1},
+        "parameters": {"a": {"unit": "m"}},
+        "unknowns": {"y": {"unit": "m"}},
+        "dynamics": ["y' = 0"],
+        "endpoints": ["y(0) = a"],
+        "observations": [{"of": "y", "unit": "cm", "points": [[0, 1], [0.5, 2], [1, 6]]}],
+        "solve": {"starts": 2},
+    }  # the mean: 3 cm; its sigma: sqrt(7/3) cm
+    done = _run("solve", "-", stdin=json.dumps(document))
+    assert done.returncode == 0
+    assert re.search(r"a +0\.03\xa0m, sigma 0\.01528\xa0m", done.stdout)
+    assert re.search(r"spread +2\.646\xa0cm of 3 observations", done.stdout)
+    assert re.search(r"passed +other starts", done.stdout)

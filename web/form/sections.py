@@ -219,7 +219,7 @@ SECTIONS = (
         (
             Column("of", "of", "Measured", Kind.FORMULA, example="y"),
             _UNIT,
-            Column("sigma", "sigma", "Sigma of each", Kind.VALUE, example="0.2", width="narrow"),
+            Column("sigma", "sigma", "Sigma", Kind.VALUE, example="0.2", width="narrow"),
             Column("points", "points", "Points", Kind.POINTS, example="0.5 1.21"),
             _ABOUT,
         ),
