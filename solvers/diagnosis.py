@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from solvers.checks.convexity import convex_curves
 from solvers.pursuit import End, Pursuit
 from solvers.solution import Diagnosis
 
@@ -30,7 +31,12 @@ def diagnose(pursuit: Pursuit) -> Diagnosis | None:
     findings = pursuit.findings
     if pursuit.end is End.INFEASIBLE:
         named = "; ".join(f"'{finding.label}'" for finding in findings[:3])
-        sentence = f"No curve satisfies all conditions together. The least that has to give: {named}."
+        if convex_curves(pursuit.problem):
+            sentence = f"No curve satisfies all conditions together. The least that has to give: {named}."
+        else:
+            sentence = (f"No curve was found that satisfies all conditions together, from several starts; the "
+                        f"conditions are not convex, so that one elsewhere is not excluded. The least that has to give "
+                        f"near the best: {named}.")  # fmt: skip
     elif pursuit.end is End.UNDEFINED:
         first = findings[0] if findings else None
         place = "" if first is None or first.place is None else f" at {first.place:.6g}"

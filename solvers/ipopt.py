@@ -118,6 +118,9 @@ OPTIONS: dict[str, Any] = {
 LEAST_SQUARES_MULTIPLIERS: dict[str, Any] = {"ipopt.constr_mult_init_max": 1000.0}
 """First multipliers by least squares: another try where those of zero lead nowhere."""
 
+FLOOR = 1e-9
+"""What the minimiser itself leaves open, relative to the size of the value."""
+
 LEAST_SECONDS = 0.05
 """Ipopt wants a positive limit."""
 

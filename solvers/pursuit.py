@@ -12,19 +12,21 @@ import numpy as np
 from numpy.typing import NDArray
 
 from solvers import refinement
+from solvers.checks.convexity import convex_curves
 from solvers.collocation import Family
 from solvers.deadline import Deadline
 from solvers.elastic import LeastViolation, least_violation
 from solvers.functions import Compiled, compile_problem
 from solvers.guess import guesses
-from solvers.ipopt import LEAST_SQUARES_MULTIPLIERS, Iterate, Minimum, Outcome, Start, minimise
+from solvers.ipopt import FLOOR, LEAST_SQUARES_MULTIPLIERS, Iterate, Minimum, Outcome, Start, minimise
 from solvers.layout import Layout, layout
 from solvers.lowering import lower, primed
 from solvers.mesh import Mesh, interval, uniform
 from solvers.newton import stationary_point
-from solvers.problem import Problem, Seek
+from solvers.problem import Problem, Seek, Variation
 from solvers.scaling import Scales, find_row_sizes, find_scales
 from solvers.solution import Finding, MeshStep, Progress, Watch
+from solvers.starts import variations
 from solvers.trajectory import Trajectory, carry, distance, related, trajectory
 from solvers.transcription import Program, transcribe
 from solvers.undefined import undefined_places
@@ -48,8 +50,14 @@ TORN_MESHES = 4
 """So many meshes in a row ..."""
 TORN_ERROR = 0.05
 """... with such an error at one place that hardly falls, although it is cut finer each time: the curve jumps there."""
-FLOOR = 1e-9
-"""What the minimiser itself leaves open, relative to the size of the value."""
+VIOLATED = 1e-6
+"""The least sum of relative violations that counts as one."""
+VIOLATING_STARTS = 6
+"""How many starts are tried before no curve is said to satisfy all conditions."""
+VIOLATING_DOUBLINGS = 5
+"""How often the mesh is made finer before."""
+STANDING = 0.8
+"""A violation of which a mesh four times as fine leaves this share or more is no matter of the mesh."""
 
 
 class End(Enum):
@@ -326,25 +334,63 @@ def _begin_from(
 
 def _after_least_violation(pursuit: Pursuit, minimise_: _Minimiser) -> tuple[Program, Minimum] | None:
     """Find out whether any curve satisfies the conditions; start again from one that does."""
-    mesh = first_mesh(len(pursuit.problem.places) - 1)
-    where = layout(pursuit.compiled, mesh)
-    z = guesses(pursuit.compiled, mesh, where)[0].z
-    program = _program(pursuit.compiled, mesh, where, z)
-    least = minimise_.relax(program, z / program.scale)
+    program, least = _least_violation(pursuit, minimise_)
     if least.minimum.outcome not in SOLVED:
         pursuit.end = _end_of(least.minimum)
         return None
-    if least.total > 1e-6:
+    if least.total > VIOLATED:
         pursuit.end, pursuit.findings = End.INFEASIBLE, least.findings
-        nothing = replace(least.minimum, z=least.z, multipliers=np.zeros(program.rows.count),
-                          bound_multipliers=np.zeros(len(least.z)))  # fmt: skip
-        pursuit.nearest = trajectory(program, nothing)
+        pursuit.nearest = _of_least_violation(program, least)
         return None
     minimum = minimise_(program, Start(least.z), ATTEMPTS[1])
     if minimum.outcome in SOLVED:
         return program, minimum
     pursuit.end = End.UNBOUNDED if _runs_away(program, minimum) else _end_of(minimum)
     return None
+
+
+def _least_violation(pursuit: Pursuit, minimise_: _Minimiser) -> tuple[Program, LeastViolation]:
+    """The curve that violates least, among those that several starts lead to, unless one start suffices: where all
+    conditions are convex there is but one least violation.  Then on finer meshes, for as long as that helps."""
+    compiled, stretches = pursuit.compiled, len(pursuit.problem.places) - 1
+    starts = [Variation()] if convex_curves(pursuit.problem) else variations(pursuit.problem, VIOLATING_STARTS)
+    mesh = first_mesh(stretches)
+    where = layout(compiled, mesh)
+    best: tuple[Program, LeastViolation] | None = None
+    for start in starts:
+        varied = replace(compiled.lowered, problem=replace(pursuit.problem, start=start))
+        z = guesses(replace(compiled, lowered=varied), mesh, where)[0].z
+        program = _program(compiled, mesh, where, z)
+        found = program, minimise_.relax(program, z / program.scale)
+        solved = found[1].minimum.outcome in SOLVED
+        if best is None or (solved and not (best[1].minimum.outcome in SOLVED and found[1].total >= best[1].total)):
+            best = found
+        if best[1].total <= VIOLATED or _end_of(found[1].minimum) in (End.STOPPED, End.TIME):
+            break
+    assert best is not None
+    totals = [best[1].total]
+    for doubling in range(1, VIOLATING_DOUBLINGS + 1):
+        program, least = best
+        standing = len(totals) > 2 and totals[-1] > STANDING * totals[-3]
+        solved = least.minimum.outcome in SOLVED
+        if not solved or least.total <= VIOLATED or standing or minimise_.deadline.over:
+            break
+        mesh = first_mesh(stretches, FIRST_INTERVALS * 2**doubling)
+        where = layout(compiled, mesh)
+        z = carry(_of_least_violation(program, least), mesh, where).z
+        finer = _program(compiled, mesh, where, z, program.scales)
+        again = minimise_.relax(finer, z / finer.scale)
+        if again.minimum.outcome not in SOLVED:
+            break
+        best = finer, again
+        totals.append(again.total)
+    return best
+
+
+def _of_least_violation(program: Program, least: LeastViolation) -> Trajectory:
+    """The curve itself; it has no multipliers."""
+    return trajectory(program, replace(least.minimum, z=least.z, multipliers=np.zeros(program.rows.count),
+                                       bound_multipliers=np.zeros(len(least.z))))  # fmt: skip
 
 
 def _runs_away(program: Program, minimum: Minimum) -> bool:

@@ -43,6 +43,9 @@ def _finite_size(lower: float, upper: float) -> float:
     return max((abs(limit) for limit in (lower, upper) if np.isfinite(limit)), default=0.0)
 
 
+SPIKE = 0.01
+"""Where the mean absolute value of a control is less than this share of the largest, it is large in a spike only."""
+
 SHRINKAGE = 1e-3
 """How much smaller a size may become from one mesh to the next: what tends to zero must not be blown up."""
 
@@ -123,16 +126,22 @@ EXACT = 1e-4
 def find_row_sizes(compiled: Compiled, where: Layout, scales: Scales, z: Array) -> RowSizes:
     """Sizes of the outputs from their slopes at values (SI) on a mesh: how much each changes over the scales."""
     point, end = compiled.point, compiled.end
-    sizes = np.concatenate([scales.states, scales.controls, [scales.places[0]] * 2, scales.parameters])
-    slopes = _row_sums(point_slopes(compiled, where, z), point.jacobian_rows, point.jacobian_columns, point.outputs,
-                       sizes)  # fmt: skip
+
+    def row_sums(z: Array, controls: Array) -> Array:
+        sizes = np.concatenate([scales.states, controls, [scales.places[0]] * 2, scales.parameters])
+        numbers = point_slopes(compiled, where, z)
+        return _row_sums(numbers, point.jacobian_rows, point.jacobian_columns, point.outputs, sizes)
+
+    slopes = row_sums(z, scales.controls)
+    calm = _without_spikes(where, z, scales.controls)
+    integrand = slopes[:, -1] if calm is None else row_sums(*calm)[:, -1]
     sizes = np.concatenate([np.tile(scales.states, len(where.places)), scales.places, scales.parameters,
                             scales.integrals])  # fmt: skip
     numbers = mapped(end.jacobian, end_inputs(where, z)[None], np.array(compiled.constants, dtype=float)[None])
     end_slopes = _row_sums(numbers, end.jacobian_rows, end.jacobian_columns, end.outputs, sizes)[0]
     n = point.states
     pointwise = slopes[:, n : n + point.constraints]
-    value = float(where.measures @ slopes[:, -1]) + float(end_slopes[-1])
+    value = float(where.measures @ integrand) + float(end_slopes[-1])
     value = max(value, EXACT * _squares(compiled))
     return RowSizes(
         pointwise=_positive(np.median(pointwise, axis=0)),
@@ -145,6 +154,22 @@ def _squares(compiled: Compiled) -> float:
     """The size of the squares of all observations: what they would come to if nothing were fitted."""
     points = (point for observation in compiled.lowered.problem.observations for point in observation.points)
     return sum((point.value / point.sigma) ** 2 for point in points)
+
+
+def _without_spikes(where: Layout, z: Array, scales: Array) -> tuple[Array, Array] | None:
+    """Values and sizes of the controls, those that are large in a spike only at their mean; None where none is.
+
+    A slope that is not bounded would else blow up what counts as a noticeable change of the functional.
+    """
+    controls = z[where.controls]
+    peaks = np.abs(controls).max(axis=0, initial=0.0)
+    means = where.measures @ np.abs(controls) / max(float(where.measures.sum()), 1e-300)
+    spikes = (means > 0) & (means < SPIKE * peaks)
+    if not spikes.any():
+        return None
+    calm = z.copy()
+    calm[where.controls] = np.where(spikes, np.copysign(means, controls), controls)
+    return calm, np.where(spikes, np.minimum(means, scales), scales)
 
 
 def _row_sums(numbers: Array, rows: list[int], columns: list[int], outputs: int, sizes: Array) -> Array:

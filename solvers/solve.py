@@ -9,6 +9,7 @@ from functools import cache
 from types import MappingProxyType
 
 import numpy as np
+from numpy.typing import NDArray
 
 from solvers import checks
 from solvers.arc_guess import with_sketches
@@ -20,21 +21,24 @@ from solvers.checks.redundancy import unambiguous
 from solvers.curve import Curve
 from solvers.deadline import Deadline, in_seconds
 from solvers.diagnosis import diagnose
+from solvers.evaluation import point_outputs
 from solvers.extremals import solve_from_starts
 from solvers.fit import fit
 from solvers.functions import compile_problem
 from solvers.gauge import Gauged, in_parametric_form
 from solvers.graph import as_graph, checks_on_graph, prices_of_original, uprights
 from solvers.guess import guesses
+from solvers.ipopt import FLOOR
 from solvers.layout import layout
 from solvers.lowering import lower, primed
 from solvers.prices import prices
 from solvers.problem import Problem, Seek
-from solvers.pursuit import FLOOR, End, Pursuit, first_mesh, go_on, pursue
+from solvers.pursuit import End, Pursuit, first_mesh, go_on, pursue
 from solvers.rejoin import rejoin
 from solvers.scaling import find_scales
 from solvers.sensitivity import slopes
 from solvers.sharpen import sharpen
+from solvers.signs import never_negative, positive, positive_along
 from solvers.slack import SLACK, rounded_functions, with_slacks
 from solvers.solution import Check, Price, Progress, Slope, Solution, SwitchPlace, Verdict, Watch
 from solvers.structure import present_switches
@@ -42,6 +46,8 @@ from solvers.sweep import Found, Tools, sweep
 from solvers.trajectory import costate_curve, curve
 from solvers.usage import table_notes
 from solvers.verdict import judge
+
+Array = NDArray[np.float64]
 
 EARLY = {End.INFEASIBLE: Verdict.INFEASIBLE, End.UNBOUNDED: Verdict.NO_OPTIMUM}
 """Verdicts that need no curve."""
@@ -53,6 +59,8 @@ NO_OPTIMUM_FOUND = (Verdict.NOT_VERIFIED, Verdict.BEST_FOUND)
 
 SHARE = 0.6
 """Share of the remaining time that the search for switches may take."""
+DOUBTFUL = 0.5
+"""Share of the time for a form that may turn out not to be equivalent."""
 PATIENCE = 20.0
 """How much longer than the plain meshes it may take."""
 NEARLY = 30.0
@@ -81,7 +89,7 @@ def _from_starts(problem: Problem, watch: Watch | None) -> Solution:
     began = time.perf_counter()
     deadline = in_seconds(problem.options.time_limit)
     if problem.options.starts > 1:
-        solution = solve_from_starts(problem, watch, _solve_once, _sizes(problem))
+        solution = solve_from_starts(problem, watch, _solve_once, _first_look(problem)[0])
         return _with_sweep(solution, problem, None, watch, deadline) if problem.sweeps else solution
     found = _found(problem, watch, deadline)
     solution = _solution(problem, found, began)
@@ -115,12 +123,20 @@ def _found(problem: Problem, watch: Watch | None, deadline: Deadline) -> Found:
         pursuit = _in_given_form(with_slacks(problem), watch, deadline)
         if pursuit.end in (End.CONVERGED, End.STOPPED, End.TIME):
             return Found(pursuit, None)
-    sizes = cache(lambda: _sizes(problem))
+    look = cache(lambda: _first_look(problem))
     for squared in (True, False):
-        gauged = in_parametric_form(problem, sizes, squared)
+        gauged = in_parametric_form(problem, lambda: look()[0], squared)
         if gauged is None or (squared and not gauged.squared):
             continue
-        pursuit = _in_given_form(with_slacks(gauged.problem), watch, deadline)
+        doubtful = squared and not never_negative(problem)
+        if doubtful and not positive(look()[1]):
+            continue
+        room = deadline.within(DOUBTFUL * deadline.left) if doubtful else deadline
+        pursuit = _in_given_form(with_slacks(gauged.problem), watch, room)
+        if squared and pursuit.solved and not _rightly_squared(gauged, pursuit, doubtful):
+            continue
+        if doubtful and pursuit.solved and pursuit.end is End.TIME:
+            pursuit = go_on(pursuit, watch, deadline)
         if (pursuit.solved and pursuit.end is not End.TORN) or pursuit.end in (End.STOPPED, End.TIME):
             return Found(pursuit, gauged)
     pursuit = _in_given_form(with_slacks(problem), watch, deadline)
@@ -155,8 +171,17 @@ def _nearer(plain: Pursuit, sharp: Pursuit) -> bool:
     return plain.value_error <= sharp.value_error
 
 
-def _sizes(problem: Problem) -> dict[str, float]:
-    """Typical sizes of the independent variable and the unknowns; the same one where they are of like size."""
+def _rightly_squared(gauged: Gauged, pursuit: Pursuit, doubtful: bool) -> bool:
+    """Whether the square was told from zero (else its root has no slope) and the integrand is positive all along."""
+    path = pursuit.paths[-1]
+    error = pursuit.value_error if np.isfinite(pursuit.value_error) else 0.0
+    clear = path.value > max(error, FLOOR * abs(path.program.value_scale))
+    return clear and (not doubtful or positive_along(gauged, path))
+
+
+def _first_look(problem: Problem) -> tuple[dict[str, float], Array]:
+    """Typical sizes of the independent variable and the unknowns (the same one where they are of like size), and the
+    integrand along the first guess."""
     compiled = compile_problem(lower(problem))
     mesh = first_mesh(len(problem.places) - 1)
     where = layout(compiled, mesh)
@@ -166,7 +191,10 @@ def _sizes(problem: Problem) -> dict[str, float]:
     found = {
         name: float(size) for (name, order), size in zip(compiled.lowered.states, sizes, strict=True) if order == 0
     }
-    return {problem.independent: span} | {n: span if span / 30 < s < span * 30 else s for n, s in found.items()}
+    sizes_by_name = {problem.independent: span} | {
+        n: span if span / 30 < s < span * 30 else s for n, s in found.items()
+    }
+    return sizes_by_name, point_outputs(compiled, where, z)[:, -1]
 
 
 def _solution(

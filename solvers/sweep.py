@@ -22,11 +22,11 @@ from solvers.checks import refinement as refinement_check
 from solvers.deadline import Deadline
 from solvers.functions import Compiled, with_constants
 from solvers.gauge import Gauged, in_parametric_form
-from solvers.ipopt import CLOSE, Minimum, Start, minimise
+from solvers.ipopt import CLOSE, FLOOR, Minimum, Start, minimise
 from solvers.newton import stationary_point
 from solvers.numbers import Numbers
 from solvers.problem import Problem, Seek
-from solvers.pursuit import FLOOR, SOLVED, End, Pursuit, go_on
+from solvers.pursuit import SOLVED, End, Pursuit, go_on
 from solvers.solution import Check, MeshStep, Progress, Solution, Status, SweepPoint, Verdict, Watch
 from solvers.structure import SWITCH
 from solvers.trajectory import Trajectory, trajectory

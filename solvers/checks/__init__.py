@@ -28,8 +28,8 @@ from solvers.checks import (
 )
 from solvers.checks.sampling import Sampler
 from solvers.deadline import Deadline
+from solvers.ipopt import FLOOR
 from solvers.problem import Problem
-from solvers.pursuit import FLOOR
 from solvers.solution import Check, Status
 from solvers.trajectory import Trajectory
 

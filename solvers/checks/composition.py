@@ -23,7 +23,7 @@ from solvers.formula.nodes import At, Call, Lookup, Name, Negative, Node, Number
 
 INF = math.inf
 ROUNDING = 1e-12
-"""Eigenvalues above minus this, relative to the largest entry, count as nonnegative."""
+"""Eigenvalues above minus this, of a form whose diagonal holds ones, count as nonnegative."""
 
 
 class Bend(Enum):
@@ -358,9 +358,19 @@ def _matrix(quadratic: Quadratic, *, homogeneous: bool) -> np.ndarray:
 
 
 def _nonnegative(matrix: np.ndarray) -> bool:
-    if matrix.size == 0:
+    """True where the quadratic form is nowhere negative.  With every variable in its own unit no entry can hide behind
+    a large one of another: a form that is not negative has no entry larger than those of the diagonal then."""
+    diagonal = np.diag(matrix)
+    if np.any(diagonal < 0):
+        return False
+    zero = diagonal == 0
+    if np.any(matrix[zero]):
+        return False
+    units = np.sqrt(diagonal[~zero])
+    if not units.size:
         return True
-    return bool(np.linalg.eigvalsh(matrix)[0] >= -ROUNDING * np.abs(matrix).max())
+    scaled = matrix[np.ix_(~zero, ~zero)] / units[:, None] / units
+    return bool(np.isfinite(scaled).all() and np.linalg.eigvalsh(scaled)[0] >= -ROUNDING)
 
 
 def _norm(tree: Node, leaf: Leaf, unfold: Unfold) -> bool:

@@ -14,10 +14,11 @@ from collections.abc import Iterator
 from solvers.checks.composition import INF, Bend, Leaf, Shape, Unfold, shape_of
 from solvers.formula.evaluate import REAL, evaluate
 from solvers.formula.nodes import At, Name, Node
-from solvers.limits import interval_of
+from solvers.formula.substitute import at_place
+from solvers.limits import interval_of, number
 from solvers.lowering import simple_bound
 from solvers.observations import terminal
-from solvers.problem import Condition, Problem, Seek
+from solvers.problem import Condition, Place, Problem, Seek
 from solvers.solution import Check, Status
 
 NAME = "convexity"
@@ -40,31 +41,45 @@ def obstacles(problem: Problem) -> Iterator[str]:
         yield "a stationary value is asked for"
         return
     constants = {c.name: c.value for c in problem.constants}
-    parameters = {p.name for p in problem.parameters}
-    if any(isinstance(place.tree, Name) and place.tree.name in parameters for place in problem.places):
+    if not all(_given(place, constants) for place in problem.places):
         yield "a place is free"
         return
-    first, last = (float(evaluate(place.tree, lambda name, order: constants[name], REAL))
-                   for place in (problem.places[0], problem.places[-1]))  # fmt: skip
+    first, last = (number(problem.places[k].tree, constants) for k in (0, -1))
     if not first < last:
         yield f"{problem.independent} runs backwards"
         return
     leaf, unfold = known(problem, constants, first, last), unfolding(problem)
-
-    def shape(tree: Node) -> Shape:
-        return shape_of(tree, leaf, unfold)
-
-    for equation in problem.dynamics:
-        if not (shape(equation.left).affine and shape(equation.right).affine):
-            yield f"'{equation.label}' is not linear"
+    yield from _of_curves(problem, leaf, unfold)
     for tree, what in ((problem.integrand, "the integrand"), (terminal(problem), "the endpoint term")):
         if tree is None:
             continue
-        found = shape(tree)
+        found = shape_of(tree, leaf, unfold)
         if not (found.concave if problem.seek is Seek.MAXIMUM else found.convex):
             yield f"{what} is not, as far as the rules of composition reach"
+
+
+def convex_curves(problem: Problem) -> bool:
+    """Whether the curves that satisfy all conditions are proved to be a convex set."""
+    constants = {c.name: c.value for c in problem.constants}
+    try:
+        first, last = (number(problem.places[k].tree, constants) for k in (0, -1))
+    except KeyError:
+        return False
+    found = _of_curves(problem, known(problem, constants, first, last), unfolding(problem))
+    return next(found, None) is None and all(_given(place, constants) for place in problem.places)
+
+
+def _given(place: Place, constants: dict[str, float]) -> bool:
+    return not isinstance(place.tree, Name) or place.tree.name in constants
+
+
+def _of_curves(problem: Problem, leaf: Leaf, unfold: Unfold) -> Iterator[str]:
+    """Why the curves that satisfy all conditions are not (proved to be) a convex set."""
+    for equation in problem.dynamics:
+        if not all(shape_of(side, leaf, unfold).affine for side in (equation.left, equation.right)):
+            yield f"'{equation.label}' is not linear"
     for condition in (*problem.endpoints, *problem.constraints, *problem.integrals):
-        found = shape(condition.body)
+        found = shape_of(condition.body, leaf, unfold)
         if not ((condition.upper is None or found.convex) and (condition.lower is None or found.concave)):
             yield f"'{condition.label}' does not bound a convex set, as far as the rules of composition reach"
 
@@ -97,10 +112,13 @@ def _narrowed(condition: Condition, constants: dict[str, float], low: float, hig
 
 def unfolding(problem: Problem) -> Unfold:
     abbreviations = dict(problem.where)
+    functions = {unknown.name for unknown in problem.unknowns} | abbreviations.keys()
 
     def unfold(tree: Node) -> Node:
-        while isinstance(tree, Name) and tree.name in abbreviations:
-            tree = abbreviations[tree.name]
+        while isinstance(tree, Name | At) and tree.name in abbreviations:
+            whole = abbreviations[tree.name]
+            tree = whole if isinstance(tree, Name) else at_place(whole, tree.place, tree.side, problem.independent,
+                                                                 functions)  # fmt: skip
         return tree
 
     return unfold
