@@ -18,7 +18,7 @@ from solvers.deadline import Deadline
 from solvers.elastic import LeastViolation, least_violation
 from solvers.functions import Compiled, compile_problem
 from solvers.guess import guesses
-from solvers.ipopt import FLOOR, LEAST_SQUARES_MULTIPLIERS, Iterate, Minimum, Outcome, Start, minimise
+from solvers.ipopt import FLOOR, LEAST_SQUARES_MULTIPLIERS, WIDE, Iterate, Minimum, Outcome, Start, minimise
 from solvers.layout import Layout, layout
 from solvers.lowering import lower, primed
 from solvers.mesh import Mesh, interval, uniform
@@ -40,6 +40,10 @@ GROWTH = 2.5
 """How much larger, in points, one mesh may be than the one before."""
 CURVE_ROOM = 100.0
 """How much more than the tolerance the curve may still have moved: a switch that hardly matters moves freely."""
+OUTGROWN = 30.0
+"""How much larger than its first size a quantity may end before its size counts as wrong."""
+MANY_STATES = 24
+"""States at each node beyond which a program is wide."""
 FEW_ITERATIONS = 100
 """Iterations within which a solve from a related trajectory must be through: it starts near its end."""
 AIM = 0.1
@@ -193,6 +197,8 @@ class _Minimiser:
             self.pursuit.last = (program, minimum)
             if minimum.outcome is not Outcome.FAILED:
                 return minimum
+        if program.compiled.point.states > MANY_STATES:
+            options = WIDE | (options or {})
         minimum = minimise(program, start, deadline=self.deadline, watch=self._hear(program), options=options)
         self.pursuit.last = (program, minimum)
         return minimum
@@ -290,6 +296,10 @@ def _begin(pursuit: Pursuit, minimise_: _Minimiser) -> tuple[Program, Minimum] |
             program = _program(compiled, mesh, where, guess.z)
             doubtful = {"ipopt.max_iter": FEW_ITERATIONS} if End.INFEASIBLE in ends else {}
             minimum = minimise_(program, Start(guess.z / program.scale), options | doubtful)
+            if minimum.outcome is Outcome.FAILED and _outgrown(minimum):
+                z = minimum.z * program.scale
+                program = _program(compiled, mesh, where, z)
+                minimum = minimise_(program, Start(z / program.scale), options | doubtful)
             if minimum.outcome in SOLVED:
                 return program, minimum
             ends.append(_end_of(minimum))
@@ -391,6 +401,12 @@ def _of_least_violation(program: Program, least: LeastViolation) -> Trajectory:
     """The curve itself; it has no multipliers."""
     return trajectory(program, replace(least.minimum, z=least.z, multipliers=np.zeros(program.rows.count),
                                        bound_multipliers=np.zeros(len(least.z))))  # fmt: skip
+
+
+def _outgrown(minimum: Minimum) -> bool:
+    """Whether quantities are so much larger than the first guess let expect that rounding stopped the minimiser."""
+    reached = max(abs(minimum.value), float(np.abs(minimum.z).max(initial=0.0)))
+    return bool(OUTGROWN < reached < np.inf)
 
 
 def _runs_away(program: Program, minimum: Minimum) -> bool:

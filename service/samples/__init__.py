@@ -21,6 +21,7 @@ ABOUT: dict[str, str] = {
     "sleeve-limit": "The hoop distance at which that film lets go.",
     "strip": "The shape of a bent elastic strip of given length between two clamps.",
     "sample-rocket": "The greatest height of a small sounding vehicle with drag.",
+    "staged-rocket": "A vehicle that drops its booster: when to light the second stage for the greatest height.",
     "fin": "The profile of a cooling fin of given mass with the greatest heat flow.",
 }
 """Name and one line for each sample, in order."""

@@ -34,6 +34,7 @@ HARD: dict[str, str] = {
     "C12": "the limit on curvature binds on arcs of the second derivative, which is free: the time is over first",
     "C15": "a narrow path over peaks: the time is over before the mesh is fine enough",
     "C16a": "many short arcs on which limits of controls and speeds bind in turn",
+    "C19": "ten arcs of seven states beside each other: many variables on each mesh",
     "C16b": "without a cost of control most arcs are singular, between many limits that bind in turn",
 }
 """Cases that take too long to promise a result on any machine -> why.  They get little time and owe only "honesty"."""

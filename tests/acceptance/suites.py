@@ -87,6 +87,13 @@ CASES = (
         ("bang-bang", "free time"), known_to=1e-8,
     ),
     Case(
+        "C19", MAX, 10.09416, 1e-4,
+        "Luus, Dittrich, Keil (1992), Multiplicity of solutions in the optimization of a bifunctional catalyst blend, "
+        "Can. J. Chem. Eng. 70; Floudas et al. (1999), Handbook of Test Problems: 10.0942e-3 (from memory); recomputed",
+        ("arcs", "several optima", "scaling", "guess given"), known_to=5e-6,
+        figures=(parameter("u1", 0.66608, 1e-4), parameter("u2", 0.6735, 1e-4), parameter("u3", 0.67627, 1e-4)),
+    ),
+    Case(
         "C20", Sort.NOT_ATTAINED, 0.1192, 1e-2,
         "Luus (2000), Iterative Dynamic Programming: 0.12011 with coarse controls (from memory); the control "
         "oscillates ever faster, recomputed to 3 digits",
@@ -95,11 +102,6 @@ CASES = (
 )  # fmt: skip
 
 UNSAID = (
-    Unsaid(
-        "C19",
-        "Catalyst blend with a staged control",
-        "a control that is constant on stages needs arcs with own parameters",
-    ),
     Unsaid(
         "C21",
         "Low-thrust transfer",

@@ -12,6 +12,7 @@ from solvers.curve import Curve
 from solvers.formula.nodes import Name, Number
 from solvers.problem import Condition, Constant, Parameter, Place, Problem, Sweep, Unknown
 from solvers.solution import (
+    ArcCurve,
     Check,
     Diagnosis,
     Extremal,
@@ -279,3 +280,19 @@ def test_a_fit_is_told_in_the_users_units():
     assert (weighted["unit"], weighted["spread"], weighted["covariance"]) == ("", 0.2, None)
     assert weighted["parameters"]["T"]["sigma"] is None
     assert _archived()["observations"] is None
+
+
+def test_arcs_are_told_one_by_one_with_the_units_of_all():
+    first = ArcCurve("burn", Curve(BREAKS[:2], {"x": (np.array([1.1, 0.1]),), "F": (np.array([1.0]),)}), None)
+    second = ArcCurve("coast", Curve(BREAKS[1:], {"x": (np.array([1.4, 0.2]),)}),
+                      Curve(BREAKS[1:], {"x": (np.array([0.5]),)}))  # fmt: skip
+    solution = replace(SOLVED, curve=None, costates=None, arcs=(first, second))
+    found = result_document(DOCUMENT, PROBLEM, solution, {}, {})
+    assert [arc["name"] for arc in found["curve"]["arcs"]] == ["burn", "coast"]
+    assert [arc["breaks"] for arc in found["curve"]["arcs"]] == [[0, 100], [100, 300]]
+    assert found["curve"]["units"] == {"x": "mm", "F": "N"}
+    assert found["curve"]["arcs"][1]["functions"]["x"][0] == pytest.approx([1400, 200])
+    assert "F" not in found["curve"]["arcs"][1]["functions"]
+    assert [arc["name"] for arc in found["multipliers"]["costates"]["arcs"]] == ["coast"]
+    assert found["multipliers"]["costates"]["units"] == {"x": "mJ/mm"}
+    assert read_trajectory(found).end == 300

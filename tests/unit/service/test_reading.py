@@ -41,6 +41,23 @@ CRUCIBLE = {
 }
 
 
+STAGES = {
+    "format": 1,
+    "independent": {"name": "t", "unit": "s", "from": 0, "to": "T"},
+    "parameters": {"t1": {"unit": "s"}, "T": {"unit": "s"}},
+    "unknowns": {"v": {"unit": "m/s"}, "m": {"unit": "kg"}, "F": {"unit": "N", "within": [0, 9]}},
+    "constants": {"shell": "3 kg", "rate": "0.1 kg/s"},
+    "functional": {"seek": "maximum", "endpoint": "v(T)"},
+    "endpoints": ["v(0) = 0", "m(0) = 20", "m(t1-) = 15", "m(t1+) = m(t1-) - shell", "m(T) = 11"],
+    "dynamics": ["m*v' = pull"],
+    "arcs": [
+        {"name": "burn", "from": 0, "to": "t1", "where": {"pull": "F"}, "dynamics": ["m' = -rate"]},
+        {"name": "glide", "from": "t1", "to": "T", "where": {"pull": "0"}, "dynamics": ["m' = -rate/2"],
+         "integrand": "v/T", "constraints": ["v >= 0"]},
+    ],
+}  # fmt: skip
+
+
 def problem_and_document(source):
     document = read(json.dumps(source).encode())
     return assemble(document), document
@@ -211,3 +228,35 @@ def test_reading_needs_nothing_that_only_workers_have():
     code = "import sys, service.reading; print(sorted({'casadi', 'scipy'} & set(sys.modules)))"
     done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True)
     assert done.stdout.strip() == "[]"
+
+
+def test_arcs_say_what_happens_between_them_and_what_each_unknown_is_on_them():
+    told = reading(STAGES)
+    assert [arc["sentence"] for arc in told["arcs"]] == [
+        "burn: t from 0 to t1. At t1 v is continuous, and m may jump as the endpoints say.",
+        "glide: t from t1 to T.",
+    ]
+    assert [(unknown["sentence"], unknown["free"]) for unknown in told["unknowns"]] == [
+        ("v: state of order 1, determined by m*v' = pull on all arcs", False),
+        ("m: state of order 1, given by its dynamics on all arcs", False),
+        ("F: control, free everywhere on burn; in no law on glide", True),
+    ]
+    assert told["functional"]["sentence"] == (
+        "Sought is the maximum of v(T) plus the integral of v/T over t from t1 to T."
+    )
+    assert reading(HOSE)["arcs"] == []
+
+
+def test_every_formula_of_an_arc_is_a_relation_with_its_pointer():
+    kinds = {item["pointer"]: (item["kind"], item["unit"]) for item in reading(STAGES)["relations"]}
+    assert kinds["/arcs/0/where/pull"] == ("abbreviation", "")
+    assert kinds["/arcs/1/dynamics/0"] == ("dynamics", "kg/s")
+    assert kinds["/arcs/1/constraints/0"] == ("pointwise", "m/s")
+
+
+def test_the_corner_conditions_are_among_the_necessary_ones():
+    problem, document = problem_and_document(STAGES)
+    corners = [item for item in with_necessary(read_back(problem, document), problem)["necessary"]
+               if item["kind"] == "corner"]  # fmt: skip
+    assert [item["for"] for item in corners] == ["v", "t"]
+    assert ET.fromstring(corners[0]["mathml"]) is not None

@@ -80,12 +80,22 @@ def test_sections_that_are_empty_and_seldom_needed_are_folded():
     assert next(block for block in focused.blocks if block.name == "guess").open
 
 
+def test_a_complaint_about_a_line_shows_that_line():
+    document = {"format": 1, "arcs": [{"name": "burn", "dynamics": ["x' = u", "v' = w"]}]}
+    told = {"pointer": "/arcs/0/dynamics/1", "span": [5, 6], "code": "unknown-name", "message": "There is no “w”."}
+    page = compose_page(draft_from_text(json.dumps(document)), base_url=BASE, complaints=[told])
+    (shown,) = page.complaints
+    assert (shown.field, shown.before, shown.marked, shown.after) == ("arcs.0.dynamics", "v' = ", "w", "")
+    assert shown.where == "Arcs burn, dynamics"
+
+
 def test_the_whole_document_survives_the_page():
     """What a browser would post of the page is the document that the page was made of."""
     document = {
         "format": 1, "title": 'A "title" & more', "notes": "first\nsecond", "independent": {"name": "x", "to": 1},
-        "unknowns": {"y": {"within": [0, None], "odd": [1]}}, "arcs": [{"name": "a"}], "endpoints": ["y(0) = 1"],
+        "unknowns": {"y": {"within": [0, None], "odd": [1]}}, "endpoints": ["y(0) = 1"],
     }  # fmt: skip
+    document["arcs"] = [{"name": "a", "from": 0, "dynamics": ["y' = 1", "y = 2"], "where": {"k": "<3"}, "odd": 1}, {}]
     html = render(compose_page(draft_from_text(json.dumps(document)), base_url=BASE))
     assert json.loads(draft_from_post(posted(html)).text) == document
 

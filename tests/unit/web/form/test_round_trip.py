@@ -31,7 +31,13 @@ def test_every_sample_survives_the_form(name):
 @pytest.mark.parametrize(
     "document",
     [
-        pytest.param({"format": 1, "arcs": [{"name": "burn"}]}, id="a member without fields"),
+        pytest.param({"format": 1, "region": [{"name": "burn"}]}, id="a member without fields"),
+        pytest.param({"format": 1, "arcs": [{"name": "burn"}, {}]}, id="an empty arc"),
+        pytest.param({"format": 1, "arcs": [{"name": "a", "dynamics": ["x' = u", 5]}]}, id="a number among formulas"),
+        pytest.param({"format": 1, "arcs": [{"name": "a", "dynamics": ["x' =\nu"]}]}, id="a formula of two lines"),
+        pytest.param({"format": 1, "arcs": [{"name": "a", "where": {"b = c": "d"}}]}, id="a name with a sign"),
+        pytest.param({"format": 1, "arcs": [{"name": "a", "where": {"b": ""}}]}, id="a name for nothing"),
+        pytest.param({"format": 1, "arcs": [{"name": "a", "where": {" b": "1"}}]}, id="a name with a blank"),
         pytest.param({"format": 2}, id="another format"),
         pytest.param({"format": 1, "unknowns": {"y": {"unit": "m", "colour": "red"}}}, id="a strange part of a row"),
         pytest.param({"format": 1, "unknowns": {"y": {"within": [None, 2]}}}, id="half a range"),
@@ -70,6 +76,35 @@ def test_any_object_survives_up_to_empty_parts_and_outer_blanks(document):
 def _blank(name, content):
     """A record that holds nothing but the first choice is as good as none."""
     return name == "functional" and content == {"seek": "minimum"}
+
+
+def test_arcs_are_rows_with_one_formula_to_a_line():
+    arcs = [
+        {
+            "name": "burn",
+            "from": 0,
+            "to": "t1",
+            "where": {"F": "3*u", "D": "v^2"},
+            "dynamics": ["v' = F - D", "m' = -u"],
+        },
+        {"name": "coast", "from": "t1", "to": 9.5, "integrand": "v", "constraints": ["0 <= v", "integral(v) = 1"]},
+    ]
+    fields = form_from_document({"format": 1, "arcs": arcs})
+    assert fields["arcs.0.where"] == "F = 3*u\nD = v^2"
+    assert fields["arcs.0.dynamics"] == "v' = F - D\nm' = -u"
+    reading = read_form(fields)
+    assert reading.document == {"format": 1, "arcs": arcs}
+    assert reading.places["/arcs/1/constraints"] == "arcs.1.constraints"
+    assert kept_back(fields) == ()
+
+
+@pytest.mark.parametrize(
+    ("lines", "code"),
+    [("F = 3\n3*u", "no-name"), ("= 3", "no-name"), ("F =", "no-name"), ("F = 3\nF = 4", "name-twice")],
+)
+def test_a_line_that_gives_no_name_to_a_formula_is_a_complaint(lines, code):
+    reading = read_form({"arcs.0.name": "burn", "arcs.0.where": lines})
+    assert [(item.field, item.code) for item in reading.complaints] == [("arcs.0.where", code)]
 
 
 def test_members_without_fields_are_named():
