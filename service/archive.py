@@ -19,7 +19,18 @@ import numpy as np
 from service.spec import Document
 from solvers.curve import Array, Curve
 from solvers.problem import Condition, Problem
-from solvers.solution import Check, Diagnosis, Extremal, Finding, Fitted, MeshStep, Price, Slope, Solution
+from solvers.solution import (
+    Check,
+    Diagnosis,
+    Extremal,
+    Finding,
+    Fitted,
+    MeshStep,
+    Price,
+    Slope,
+    Solution,
+    SweepPoint,
+)
 from solvers.units import PLAIN, Unit
 from web.unit_text import per
 
@@ -228,10 +239,13 @@ def _fitted(fitted: Fitted, problem: Problem) -> dict[str, Any]:
     }
 
 
+def _by_arc(found: Solution | SweepPoint) -> list[tuple[str, Curve]]:
+    """The arcs of a curve with their names; a curve without arcs is one without a name."""
+    return [(arc.name, arc.curve) for arc in found.arcs] if found.curve is None else [("", found.curve)]
+
+
 def _curve(solution: Solution, problem: Problem, units: _Units) -> dict[str, Any] | None:
-    arcs = [(arc.name, arc.curve) for arc in solution.arcs]
-    if solution.curve is not None:
-        arcs = [("", solution.curve)]
+    arcs = _by_arc(solution)
     if not arcs:
         return None
     functions = {name: units.function(name) for _, curve in arcs for name in curve.functions}
@@ -332,11 +346,11 @@ def _sweep(solution: Solution, problem: Problem, units: _Units) -> dict[str, Any
         "curves": [
             {
                 "point": index,
-                "arcs": [_arc("", point.curve, {name: units.function(name) for name in point.curve.functions},
-                              problem.independent_unit)],
+                "arcs": [_arc(name, curve, {function: units.function(function) for function in curve.functions},
+                              problem.independent_unit) for name, curve in arcs],
             }
             for index, point in enumerate(solution.sweep)
-            if point.curve is not None
+            if (arcs := _by_arc(point))
         ],
     }  # fmt: skip
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Iterator
+from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import replace
 
 import numpy as np
@@ -14,7 +14,7 @@ from solvers.checks import free_ends
 from solvers.curve import Curve
 from solvers.limits import number
 from solvers.lowering import primed
-from solvers.solution import ArcCurve, Check, Diagnosis, Finding, Price, Solution, Status, SwitchPlace
+from solvers.solution import ArcCurve, Check, Diagnosis, Finding, Price, Solution, Status, SweepPoint, SwitchPlace
 
 Array = NDArray[np.float64]
 
@@ -24,8 +24,8 @@ VANISHED = 1e-9
 
 def rejoin(beside: Beside, found: Solution) -> Solution:
     """The solution of the original problem from that of the equivalent one."""
-    places = _places(beside, found)
-    curves = tuple(_curves(beside, found, places))
+    places = _places(beside, found.parameters)
+    curves = tuple(_curves(beside, found.curve, found.costates, places))
     notes = [*found.notes, *_notes(beside, places, curves)]
     return replace(
         found,
@@ -36,23 +36,34 @@ def rejoin(beside: Beside, found: Solution) -> Solution:
         checks=tuple(_check(beside, check, places) for check in found.checks),
         diagnosis=None if found.diagnosis is None else _diagnosis(beside, found.diagnosis, places),
         notes=tuple(notes),
+        sweep=tuple(_point(beside, point) for point in found.sweep),
         extremals=tuple(replace(one, solution=rejoin(beside, one.solution)) for one in found.extremals),
-        sweep=tuple(replace(point, curve=None) for point in found.sweep),
         switches=tuple(sorted(set(_switches(beside, found, places)), key=lambda switch: switch.place)),
     )
 
 
-def _places(beside: Beside, found: Solution) -> Array:
-    """The values of all places; not a number where no parameters were found that they depend on."""
+def _point(beside: Beside, point: SweepPoint) -> SweepPoint:
+    """A point of a sweep with its curve by arcs."""
+    swept = {sweep.constant: value for sweep, value in zip(beside.original.sweeps, point.at, strict=True)}
+    curves = _curves(beside, point.curve, None, _places(beside, point.parameters, swept))
+    return replace(point, curve=None, arcs=tuple(curves))
+
+
+def _places(beside: Beside, parameters: Mapping[str, float], constants: Mapping[str, float] | None = None) -> Array:
+    """The values of all places; not a number where no parameters were found that they depend on.
+
+    `constants` are those that are not as the problem has them.
+    """
     problem = beside.original
-    values = {c.name: c.value for c in problem.constants} | dict(found.parameters)
+    values = {c.name: c.value for c in problem.constants} | dict(constants or {}) | dict(parameters)
     free = {p.name for p in problem.parameters} - values.keys()
     values |= dict.fromkeys(free, float("nan"))
     return np.array([number(place.tree, values) for place in problem.places])
 
 
-def _curves(beside: Beside, found: Solution, places: Array) -> Iterator[ArcCurve]:
-    if found.curve is None or not np.isfinite(places).all():
+def _curves(beside: Beside, curve: Curve | None, along: Curve | None, places: Array) -> Iterator[ArcCurve]:
+    """The arcs of a curve and of its costates."""
+    if curve is None or not np.isfinite(places).all():
         return
     span = places[-1] - places[0]
     for index, arc in enumerate(beside.original.arcs):
@@ -61,10 +72,9 @@ def _curves(beside: Beside, found: Solution, places: Array) -> Iterator[ArcCurve
             start, length = places[piece.place], places[piece.place + 1] - places[piece.place]
             if piece.arc != index or length <= VANISHED * span:
                 continue
-            curves.append(_moved(found.curve, _functions(beside, piece, found.curve, length), start, length))
-            if found.costates is not None:
-                multipliers = _multipliers(beside, piece, found.costates, length)
-                costates.append(_moved(found.costates, multipliers, start, length))
+            curves.append(_moved(curve, _functions(beside, piece, curve, length), start, length))
+            if along is not None:
+                costates.append(_moved(along, _multipliers(beside, piece, along, length), start, length))
         if curves:
             yield ArcCurve(arc.name, _joined(curves), _joined(costates) if costates else None)
 

@@ -204,6 +204,7 @@ class SweepPoint:
     failed: tuple[str, ...] = ()
     note: str = ""
     curve: Curve | None = None
+    arcs: tuple[ArcCurve, ...] = ()  # the curve of a problem of arcs
 
 
 @dataclass(frozen=True, slots=True)

@@ -133,3 +133,14 @@ def test_refraction_obeys_its_law():
     x = found.parameters["a"]
     above, below = x / np.hypot(x, 1), (1 - x) / np.hypot(1 - x, 1)
     assert above == pytest.approx(1.5 * below, rel=1e-9)  # Snell's law, common practice
+
+
+def test_a_sweep_and_its_slopes_are_told_for_arcs_too():
+    swept = solve(stages(sweep={"shell": {"values": [80, 120]}}))
+    assert [len(point.arcs) for point in swept.sweep] == [2, 2]
+    for point, mass in zip(swept.sweep, (80, 120), strict=True):
+        second = point.arcs[1].curve
+        assert second.evaluate("m", second.breaks[:1] + 1e-9)[0] == pytest.approx(400 - mass, rel=1e-6)
+    slope = next(slope.slope for slope in swept.slopes if slope.constant == "shell")
+    low, high = (point.value for point in swept.sweep)
+    assert (high - low) / 40 == pytest.approx(slope, rel=2e-2)
