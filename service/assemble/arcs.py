@@ -18,6 +18,9 @@ from service.complaints import Complaint, Stage, refuse
 from solvers.formula.nodes import At, Call, Name, Node, Number, Relation, Sum, children, walk, with_children
 from solvers.problem import Arc, Condition, Equation, Problem, Unknown
 
+MOST_PIECES = 24
+"""Pieces of arcs between neighbouring places."""
+
 Written = Mapping[str, Expression]
 """Abbreviations by name."""
 
@@ -54,6 +57,7 @@ class ArcBuilder:
 
     def on(self, problem: Problem) -> Problem:
         """A problem that has all but the laws along its arcs, completed.  Raises `Refused` (stage conditions)."""
+        refuse(Stage.CONDITIONS, self.too_many_pieces())
         laws = [self.laws(arc) for arc in self.formulas.arcs]
         integrals = problem.integrals
         over_all = [*(c.body for c in integrals), *(() if problem.endpoint is None else (problem.endpoint,))]
@@ -91,6 +95,13 @@ class ArcBuilder:
             arcs=tuple(replace(arc, integrals=tuple(sided(c) for c in arc.integrals)) for arc in arcs),
             jumps=junctions.jumps,
         )
+
+    def too_many_pieces(self) -> Iterable[Complaint]:
+        """Places within arcs cut them into pieces, each of which has all its unknowns for itself."""
+        pieces = len(self.places.spots) - 1
+        if pieces > MOST_PIECES:
+            message = f"With the places named within them the arcs have {pieces} pieces; at most {MOST_PIECES}."
+            yield Complaint("/arcs", None, "too-many", message, "Name fewer places within arcs.")
 
     def laws(self, arc: ArcFormulas) -> Laws:
         """All that holds on an arc."""
