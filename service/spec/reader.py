@@ -47,8 +47,4 @@ def _not_yet(source: dict[str, Any]) -> list[Complaint]:
     if isinstance(source.get("independent"), list):
         message = "Several independent variables are not solved yet."
         found.append(Complaint("/independent", None, "not-yet", message, LATER["region"]))
-    if source.get("arcs") and source.get("observations"):
-        message = "Observations are fitted where one set of laws holds from end to end, not on several arcs yet."
-        hint = "Leave out the arcs; or put the squares of the misfits into the endpoint term."
-        found.append(Complaint("/observations", None, "not-yet", message, hint))
     return found
