@@ -2,14 +2,17 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
+
 import numpy as np
 from numpy.typing import NDArray
 
 from solvers.formula.evaluate import evaluate
-from solvers.formula.nodes import Node
+from solvers.formula.nodes import Call, Lookup, Node, walk
 from solvers.functions import Compiled
 from solvers.limits import constants_of
 from solvers.lowering import Quantity
+from solvers.problem import Problem
 from solvers.sketch import ARRAYS
 
 Array = NDArray[np.float64]
@@ -40,3 +43,15 @@ class Along:
         if (name, order) not in self._values:
             self._values[name, order] = self.value(self._lowered.given[name, order])
         return self._values[name, order]
+
+
+def lookups_along(problem: Problem) -> Iterator[Lookup]:
+    """Every use of a table along the curve."""
+    trees: list[Node] = [tree for _, tree in problem.where]
+    trees += [side for line in problem.dynamics for side in (line.left, line.right)]
+    trees += [condition.body for condition in problem.constraints]
+    trees += [] if problem.integrand is None else [problem.integrand]
+    inside = [condition.body for condition in problem.integrals]
+    trees += [node.arguments[0] for body in inside for node in walk(body)
+              if isinstance(node, Call) and node.function == "integral"]  # fmt: skip
+    yield from (node for tree in trees for node in walk(tree) if isinstance(node, Lookup))

@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 from solvers import refinement
 from solvers.checks.convexity import convex_curves
 from solvers.collocation import Family
+from solvers.corners import at_corners
 from solvers.deadline import Deadline
 from solvers.elastic import LeastViolation, least_violation
 from solvers.functions import Compiled, compile_problem
@@ -163,7 +164,7 @@ def _go_on(pursuit: Pursuit, minimise_: _Minimiser, meshes: int) -> None:
         if minimise_.deadline.over or minimise_.deadline.left < 1.2 * pursuit.steps[-1].seconds:
             pursuit.end = End.TIME
             return
-        step = _next(path, mesh, minimise_)
+        step = _next(path, _with_corners(mesh, path, options.points), minimise_)
         if step is None:
             return
         _add(pursuit, minimise_, *step)
@@ -171,6 +172,12 @@ def _go_on(pursuit: Pursuit, minimise_: _Minimiser, meshes: int) -> None:
         if end is not None:
             pursuit.end = end
             return
+
+
+def _with_corners(mesh: Mesh, path: Trajectory, points: int) -> Mesh:
+    """The mesh with breaks at corners of tables, as far as the points reach."""
+    cut = at_corners(mesh, path)
+    return cut if cut.points <= points else mesh
 
 
 def _add(pursuit: Pursuit, minimise_: _Minimiser, program: Program, minimum: Minimum) -> None:

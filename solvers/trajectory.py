@@ -193,12 +193,12 @@ def carry(path: Trajectory, mesh: Mesh, where: Layout) -> Carried:
 
     rows = np.zeros(order.count)
     weights = np.concatenate([i.scheme.weights for i in mesh.intervals])
-    costates = _sample(path.breaks, path.costate_modes(), points)
+    costates = at_points(path.breaks, path.costate_modes(), points)
     rows[: order.ends] = (-costates * weights[:, None]).ravel()
     gauss = [k for k, i in enumerate(mesh.intervals) if i.scheme.family is Family.GAUSS]
     rows[order.ends : order.pointwise] = costates[where.first[np.array(gauss, int) + 1] - 1].ravel()
     measures = where.measures * where.lengths(path.places)
-    density = _sample(path.breaks, _modes(source, path.multipliers, None), points)
+    density = at_points(path.breaks, _modes(source, path.multipliers, None), points)
     rows[order.pointwise : order.rims] = (density * measures[:, None]).ravel()
     if order.integrals - order.rims == source.rows.integrals - source.rows.rims:
         rows[order.rims : order.integrals] = path.row_multipliers[source.rows.rims : source.rows.integrals]
@@ -216,12 +216,12 @@ def carry(path: Trajectory, mesh: Mesh, where: Layout) -> Carried:
 
 def _draw(z: Array, path: Trajectory, where: Layout, breaks: Array, points: Array) -> None:
     """Put the curve of a path into the variables of another layout."""
-    z[where.nodes] = _sample(path.breaks, path.state_modes(), breaks)
-    z[where.inner] = _sample(path.breaks, path.state_modes(), points)
-    z[where.controls] = _sample(path.breaks, path.control_modes(), points)
+    z[where.nodes] = at_points(path.breaks, path.state_modes(), breaks)
+    z[where.inner] = at_points(path.breaks, path.state_modes(), points)
+    z[where.controls] = at_points(path.breaks, path.control_modes(), points)
 
 
-def _sample(breaks: Array, modes: list[Array], places: Array) -> Array:
+def at_points(breaks: Array, modes: list[Array], places: Array) -> Array:
     """Piecewise polynomials at places of another mesh (len(places) x components)."""
     rounding = 4 * np.finfo(float).eps * np.abs(breaks).max()  # a point at a right end stays with what ends there
     owner = np.clip(np.searchsorted(breaks, places - rounding, side="left") - 1, 0, len(modes) - 1)
@@ -237,7 +237,7 @@ def distance(now: Trajectory, before: Trajectory) -> float:
     if now.states.shape[1] == 0:
         return 0.0
     now_at, before_at = _fractions(now), _fractions(before)
-    values = _sample(before_at[0], before.state_modes(), now_at[1])
+    values = at_points(before_at[0], before.state_modes(), now_at[1])
     differences = np.abs(values - now.states).max(axis=0)
     return float((differences / sizes_of(now.states, now.program.scales.states)).max())
 

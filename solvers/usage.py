@@ -6,11 +6,9 @@ from collections.abc import Iterator
 
 import numpy as np
 
-from solvers.along import Along
+from solvers.along import Along, lookups_along
 from solvers.checks.sampling import Sampler
-from solvers.formula.nodes import Call, Lookup, Node, walk
 from solvers.formula.printer import text
-from solvers.problem import Problem
 from solvers.tables import Between, Outside, Table
 from solvers.trajectory import Trajectory
 
@@ -27,7 +25,7 @@ def table_notes(path: Trajectory) -> Iterator[str]:
     n, m = sampler.point.states, sampler.point.controls
     along = Along(path.program.compiled, sample.places, sample.v[:, :n], sample.v[:, n : n + m], path.parameters)
     told: set[str] = set()
-    for lookup in _lookups(sampler.problem):
+    for lookup in lookups_along(sampler.problem):
         table = lookup.table
         for index, argument in enumerate(lookup.arguments):
             values = along.value(argument)
@@ -50,15 +48,3 @@ def _range(table: Table, index: int, argument: str, least: float, most: float) -
     if table.outside is not Outside.REFUSE and (least < low - room or most > high + room):
         return f"{used}, but {measured}: beyond that it {BEYOND[table.outside]}."
     return f"{used}; {measured}."
-
-
-def _lookups(problem: Problem) -> Iterator[Lookup]:
-    """Every use of a table along the curve."""
-    trees: list[Node] = [tree for _, tree in problem.where]
-    trees += [side for line in problem.dynamics for side in (line.left, line.right)]
-    trees += [condition.body for condition in problem.constraints]
-    trees += [] if problem.integrand is None else [problem.integrand]
-    inside = [condition.body for condition in problem.integrals]
-    trees += [node.arguments[0] for body in inside for node in walk(body)
-              if isinstance(node, Call) and node.function == "integral"]  # fmt: skip
-    yield from (node for tree in trees for node in walk(tree) if isinstance(node, Lookup))

@@ -7,6 +7,7 @@ from math import acosh, asin, cos, hypot, sin, sqrt
 
 import numpy as np
 import pytest
+from scipy.interpolate import PchipInterpolator
 
 from solvers.solution import Status, Verdict
 from solvers.solve import solve
@@ -178,3 +179,18 @@ def test_a_path_beyond_the_range_is_said():
     )
     used = "w is used for y from 0 to 0.25, but it was measured from -1 to 0.1"
     assert f"{used}: beyond that it goes on along its tangent." in solution.notes
+
+
+@pytest.mark.parametrize("between", ["monotone", "linear"])
+def test_a_disturbance_with_corners_is_met_exactly(between):
+    """x' = u - d(t), least integral of u^2: u is constant (Cauchy and Schwarz), 1 + the integral of d."""
+    knots, heights = [0.0, 0.2, 0.4, 0.6, 1.0], [0.0, 1.0, 0.2, 1.5, 0.0]
+    solution = minimised(
+        tables={"d": {"of": {"t": ""}, "points": [list(p) for p in zip(knots, heights, strict=True)],
+                      "between": between}},
+        dynamics=["x' = u - d(t)"],
+    )  # fmt: skip
+    # SciPy's monotone interpolant; the trapezoidal rule but for the corners that are rounded off.
+    integral = 0.69 if between == "linear" else float(PchipInterpolator(knots, heights).integrate(0, 1))
+    assert solution.value == pytest.approx((1 + integral) ** 2, rel=2e-7)
+    assert len(solution.meshes) <= 4
