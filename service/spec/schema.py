@@ -18,6 +18,22 @@ EXAMPLES: list[dict[str, Any]] = [
     },
     {
         "format": 1,
+        "title": "Light path through a rod of measured refractive index",
+        "independent": {"name": "z", "unit": "mm", "from": 0, "to": 12},
+        "unknowns": {"r": {"unit": "mm"}},
+        "tables": {
+            "n": {
+                "of": {"r": "mm"},
+                "points": [[-2, 1.5723], [-1, 1.6082], [0, 1.62], [1, 1.6082], [2, 1.5723]],
+                "between": "smooth",
+                "outside": "refuse",
+            }
+        },
+        "functional": {"seek": "minimum", "integrand": "n(r)*sqrt(1 + r'^2)"},
+        "endpoints": ["r(0) = 0.8", "r(12) = -0.5"],
+    },
+    {
+        "format": 1,
         "title": "Crucible across the hall without residual swing",
         "independent": {"name": "t", "unit": "s", "from": 0, "to": "T"},
         "constants": {"g": "9.80665 m/s^2", "l": "0.80 m +/- 0.01 m", "D": "3 m"},
@@ -38,7 +54,7 @@ EXAMPLES: list[dict[str, Any]] = [
         "solve": {"tolerance": 1e-6, "time_limit": 60},
     },
 ]  # fmt: skip
-"""Two whole documents: a shape and a trajectory."""
+"""Whole documents: a shape, a path through what was measured, a trajectory."""
 
 
 def problem_schema() -> dict[str, Any]:

@@ -33,6 +33,8 @@ _EXAMPLES = (
     ("abs(x) + sign(x) + hypot(x, y)", "Where `abs` has to be smoothed, the result says so."),
     ("min(a, b) + max(a, b, c)", "The least and the greatest of two or more."),
     ("2*pi*r", "`pi` is the only name that is given."),
+    ("n(r) + h(T, p)", "Measured tables of one or two arguments; a bare number is in the unit of its argument."),
+    ("n'(r) + h_T(T, p)", "Their slopes: primes with one argument, the name of the argument with two."),
 )
 
 
