@@ -90,7 +90,9 @@ def _lines(result: Mapping[str, Any]) -> Iterator[str]:
         sigma = fit["parameters"][name]["sigma"] if fit else None
         yield _row(name, text if sigma is None else f"{text}, sigma {display.quantity(sigma, parameter['unit'], 4)}")
     if fit and fit["spread"] is not None:
-        yield _row("spread", f"{display.quantity(fit['spread'], fit['unit'], 4)} of {fit['points']} observations")
+        times = " times the sigmas" if fit["sigmas_known"] else ""
+        spread = display.quantity(fit["spread"], fit["unit"], 4)
+        yield _row("spread", f"{spread}{times} of {fit['points']} observations")
     yield from _diagnosis(result["diagnosis"])
     if result["checks"]:
         yield ""

@@ -13,6 +13,7 @@ ABOUT: dict[str, str] = {
     "scan-stage": "40 mm in least time under limits on speed, acceleration and jerk.",
     "scan-stage-way-points": "The smoothest motion through two timed way points.",
     "ramp": "A furnace ramp of least energy under a thermal stress limit.",
+    "cooling": "How fast a crucible cools, fitted to thirteen readings.",
     "hose": "The hanging shape of a hose of given length.",
     "hose-over-bench": "The same hose, held up by a bench.",
     "lens-rod": "The path of a light ray through a rod whose refractive index is a measured table.",

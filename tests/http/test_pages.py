@@ -126,6 +126,7 @@ def _fields(page):
     for name, text in re.findall(r'<textarea[^>]*name="([^"]*)"[^>]*>(.*?)</textarea>', form, re.DOTALL):
         fields[name] = html.unescape(text).removeprefix("\n")
     for name, options in re.findall(r'<select[^>]*name="([^"]*)"[^>]*>(.*?)</select>', form, re.DOTALL):
-        chosen = re.search(r"<option[^>]*selected[^>]*>([^<]*)", options) or re.search(r"<option[^>]*>([^<]*)", options)
+        value = r'<option value="([^"]*)"'
+        chosen = re.search(value + " selected", options) or re.search(value, options)
         fields[name] = html.unescape(chosen[1])
     return fields
