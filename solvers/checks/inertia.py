@@ -18,6 +18,7 @@ from scipy.sparse.linalg import ArpackError, LinearOperator, eigsh, lsqr, splu
 from solvers.checks.sampling import Sampler
 from solvers.checks.variation import second_variation
 from solvers.deadline import FOREVER, Deadline
+from solvers.structure import SWITCH
 
 Array = NDArray[np.float64]
 Flags = NDArray[np.bool_]
@@ -79,6 +80,7 @@ def second_order(sampler: Sampler) -> Second:
     pull = -(numbers.gradient(z) + jacobian.T @ multipliers)
     bounds = np.where(held, pull, bounds)
     fixed &= ~held
+    fixed[smooth_junctions(sampler)] = True
     resting = ~fixed & (held | (z - program.lower <= AT_BOUND) | (program.upper - z <= AT_BOUND))
     measure = np.ones(where.size)
     measure[where.inner] = measure[where.controls] = weight[:, None]
@@ -98,6 +100,29 @@ def second_order(sampler: Sampler) -> Second:
         border[where.controls[where.first[-2], 0] :] = True
     return Second(hessian, jacobian.tocsr(), metric, fixed, resting, pushed, equalities, at_limit, forced,
                   long, border)  # fmt: skip
+
+
+SMOOTH = 1e-3
+"""Jump of a control, relative to its size, up to which it goes on smoothly."""
+
+
+def smooth_junctions(sampler: Sampler) -> Indices:
+    """The switches at which no control jumps, by where their places stand in z.
+
+    Moving such a place alone changes the curve by nothing of second order: the variation of the controls says already
+    where the arcs meet (Maurer, 1981, on first- and second-order conditions with control constraints; from memory).
+    """
+    where, problem = sampler.path.program.layout, sampler.problem
+    found = []
+    for place, node in zip(problem.places, where.at_place, strict=True):
+        names = [parameter.name for parameter in problem.parameters]
+        if not place.label.startswith(SWITCH + " ") or place.label not in names:
+            continue
+        ends = np.array([node - 1, node]), np.array([1.0, 0.0])
+        jump = np.abs(np.diff(sampler.controls_at(*ends), axis=0)) / sampler.control_sizes
+        if jump.max(initial=0.0) <= SMOOTH:
+            found.append(where.parameters[names.index(place.label)])
+    return np.array(found, dtype=np.int64)
 
 
 def hessian_of_program(sampler: Sampler) -> sp.csc_matrix:

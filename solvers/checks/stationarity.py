@@ -189,8 +189,9 @@ def _multipliers(sampler: Sampler) -> list[Finding]:
     where, findings = path.program.layout, []
     place = float(path.breaks[0])
     for j in np.flatnonzero(np.isfinite(sampler.bounds[0]) | np.isfinite(sampler.bounds[1])):
-        figure = complementarity(path.bound_multipliers[where.inner[:, j]], path.states[:, j], sampler.bounds[0][j],
-                                 sampler.bounds[1][j], sampler.state_sizes[j]) / sampler.value_size  # fmt: skip
+        lower, upper = (float(bounds[j]) for bounds in sampler.bounds[:2])
+        figure = complementarity(_spread(sampler, int(j)), path.states[:, j], lower, upper, sampler.state_sizes[j])
+        figure /= sampler.value_size
         findings.append((figure, place, sampler.state_names[j]))
     lines = len(sampler.compiled.lowered.equalities)
     if c > lines:
@@ -207,6 +208,22 @@ def _multipliers(sampler: Sampler) -> list[Finding]:
                 findings.append((figure / sampler.value_size, place, condition.label))
     return [(figure, at, subject, f"The multiplier of '{subject}' times the distance from the limit "
              f"is {figure:.1e} of the functional.") for figure, at, subject in findings]  # fmt: skip
+
+
+def _spread(sampler: Sampler, state: int) -> Array:
+    """The multipliers of a state's bounds at the points; where the state is held on one, the mean of each interval.
+
+    There the minimiser sees equalities, whose multipliers may alternate from point to point although nothing pulls.
+    What a place puts on the state beside the arc stays apart.
+    """
+    path, where = sampler.path, sampler.path.program.layout
+    multipliers = path.bound_multipliers[where.inner[:, state]].copy()
+    held = {h.stretch for h in sampler.problem.held if (h.name, h.order) == sampler.compiled.lowered.states[state]}
+    last = np.append(np.diff(sampler.stretch) > 0, True)
+    for k in np.flatnonzero(np.isin(sampler.stretch, list(held))):
+        inside = slice(where.first[k], where.first[k + 1] - int(last[k]))
+        multipliers[inside] = multipliers[inside].mean() if inside.stop > inside.start else 0.0
+    return multipliers
 
 
 def complementarity(multipliers: Array, values: Array, lower: float, upper: float, size: float) -> float:

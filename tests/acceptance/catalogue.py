@@ -11,14 +11,8 @@ CATALOGUE: dict[str, Case] = {
 """All cases by id, in order."""
 
 
-_WHERE_LIMITS_END = (
-    "where the limit begins and ceases to bind the multiplier is found to three digits only: stationarity just fails"
-)
-
 KNOWN_FAILURES: dict[tuple[str, str], str] = {
     ("A56a", "verdict"): "the tip of the fin is singular, and the second variation is not decided there",
-    ("B04a", "verdict"): _WHERE_LIMITS_END,
-    ("B37", "verdict"): "the second variation is not decided along the limit of the control",
     ("C06", "verdict"): "a weakly determined rate: the second variation along it is below the margin of the check",
 }
 """Promises that are not kept yet: (case, promise) -> reason.  A promise is "value", "error", "verdict" or "figures"."""
@@ -28,8 +22,6 @@ HARD: dict[str, str] = {
     "A54": "the section vanishes at both ends, where the second derivative is singular: many narrow meshes",
     "A56b": "the tip of the fin is singular: the minimiser takes many steps on a narrow mesh",
     "B26": "singular arc in free time: whether the second variation is decided depends on the time left",
-    "B29b": "slow steps beside the limit of the control: the end depends on the time left",
-    "B32a": "the control leaves and meets its limit nearly along it: the end depends on the time left",
     "B34": "many switches around a singular arc",
     "C12": "the limit on curvature binds on arcs of the second derivative, which is free: the time is over first",
     "C15": "a narrow path over peaks: the time is over before the mesh is fine enough",

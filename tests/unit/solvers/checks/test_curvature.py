@@ -5,10 +5,14 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
-from solvers.checks import curvature
+from solvers.checks import curvature, inertia
 from solvers.checks.sampling import Sampler
 from solvers.checks.variation import second_variation
+from solvers.deadline import in_seconds
+from solvers.pursuit import pursue
+from solvers.sharpen import sharpen
 from solvers.solution import Status
+from tests.unit.solvers.checks.conftest import problem_of
 
 
 def action(length, *, seek="minimum"):
@@ -119,3 +123,30 @@ def test_the_second_variation_is_the_programs_where_quadrature_is_exact(stationa
     ours, theirs = (change @ m[np.ix_(inside, inside)] @ change for m in (form.toarray(), expected))
     assert ours == pytest.approx(theirs, rel=1e-9)
     assert np.all(np.linalg.eigvalsh(metric.toarray()) > -1e-14)
+
+
+CAPPED = {
+    "independent": {"name": "t", "from": 0, "to": 1},
+    "unknowns": {"x": {}, "u": {"within": [-1, 1]}},
+    "dynamics": ["x' = u"],
+    "functional": {"seek": "minimum", "integrand": "x^2 + u^2/4 - x*u^2/100"},
+    "endpoints": ["x(0) = 1"],
+}
+"""The control rests on its limit at first and leaves it smoothly (the small term only hinders a proof of convexity)."""
+SWITCHING = {
+    "independent": {"name": "t", "from": 0, "to": "T"},
+    "parameters": {"T": {"within": [0.1, 10]}},
+    "unknowns": {"x": {}, "u": {"within": [-1, 1]}},
+    "dynamics": ["x'' = u"],
+    "functional": {"seek": "minimum", "endpoint": "T"},
+    "endpoints": ["x(0) = 0", "x'(0) = 0", "x(T) = 1", "x'(T) = 0"],
+}
+"""From full ahead to full astern at once."""
+
+
+@pytest.mark.parametrize(("document", "smooth"), [(CAPPED, 1), (SWITCHING, 0)], ids=("smooth", "jump"))
+def test_only_places_where_no_control_jumps_are_left_out(document, smooth, examine):
+    deadline = in_seconds(60)
+    path = sharpen(pursue(problem_of(document), None, deadline, meshes=3), None, deadline).paths[-1]
+    assert len(inertia.smooth_junctions(Sampler(path))) == smooth
+    assert examine(curvature.check, path).status is Status.PASSED
