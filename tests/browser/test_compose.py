@@ -45,6 +45,16 @@ def test_a_stranger_states_a_problem_and_sees_it_understood_and_solved(open_page
     page.get_by_text(re.compile(r"2\.2360")).first.wait_for(timeout=60_000)
 
 
+def test_a_table_is_pasted_and_drawn_at_once(open_page):
+    page = open_page("/compose")
+    fill(page, LINE | {"functional.integrand": "n(y)*sqrt(1 + y'^2)"})
+    page.locator("summary", has_text="Measured tables").click()
+    fill(page, {"tables.0.name": "n", "tables.0.of": "y in m", "tables.0.points": "0\t1\n1\t1.2\n2\t1.6"})
+    status(page, "Complete: ready to solve")
+    page.locator("#reading svg.plot-still").wait_for(timeout=TIMEOUT)
+    assert "n(y): 3 points" in page.locator("#reading").inner_text()
+
+
 def test_what_is_wrong_is_said_at_the_field_and_in_the_formula(open_page):
     page = open_page("/compose")
     fill(page, LINE | {"endpoints.0.formula": "y(0) = = 0"})

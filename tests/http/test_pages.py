@@ -41,6 +41,28 @@ def test_a_problem_is_composed_solved_and_found_again(client, until):
     assert "Hanging shape of a hose of 4.2 m" in again
 
 
+def test_a_table_is_pasted_solved_and_drawn(client, until):
+    fields = _fields(client.get("/compose?sample=lens-rod").text)
+    assert fields["tables.0.of"] == "r in mm"
+    pasted = fields | {"tables.0.points": "-2\t1.57\r\n0\t1.62\r\n2\t1.57"}
+    checked = client.post("/compose", data={**pasted, "do": "check"}).text
+    assert "n(r): 3 points, r from -2 mm to 2 mm; smooth between" in checked
+    assert checked.count("plot-dot line-2") == 3 + 1  # and one in the legend
+    answer = client.post("/compose", data={**pasted, "do": "solve"}, headers={"accept": "text/html"})
+    run = answer.headers["location"]
+    until(lambda: client.get(f"/api/v1{run}").json()["state"] == "finished")
+    result = client.get(run).text
+    assert "Measured tables" in result
+    assert "n is used for r from -0.5 to 0.8 mm; it was measured from -2 to 2 mm." in html.unescape(result)
+
+
+def test_a_wrong_point_is_told_at_the_points(client):
+    fields = _fields(client.get("/compose?sample=lens-rod").text) | {"tables.0.points": "0 1\n2 3\n1 2"}
+    page = client.post("/compose", data={**fields, "do": "check"}).text
+    assert 'href="#tables.0.points"' in page
+    assert "“r” does not increase: 1 comes after 2." in page
+
+
 def test_a_sample_is_solved_with_one_click(client):
     answer = client.post("/compose", data={"sample": "hose", "do": "solve"})
     assert answer.status_code == 303
