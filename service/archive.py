@@ -75,8 +75,9 @@ def result_document(
         "observations": _fit(solution, problem, units),
         "extremals": [_extremal(extremal, problem, units) for extremal in solution.extremals],
         "slopes": [_slope(slope, problem) for slope in solution.slopes],
-        "band": None if solution.value_band is None else {"value": _in(solution.value_band, problem.value_unit)},
+        "band": _band(solution, problem, units),
         "sweep": _sweep(solution, problem, units),
+        "continuation": _branch(solution, problem),
         "diagnosis": _diagnosis(solution.diagnosis, problem, units),
         "notes": list(solution.notes),
         "reading": dict(reading),
@@ -317,6 +318,35 @@ def _slope(slope: Slope, problem: Problem) -> dict[str, Any]:
         "tolerance": _in(slope.tolerance, own),
         "contribution": _in(slope.contribution, problem.value_unit),
     }
+
+
+def _band(solution: Solution, problem: Problem, units: _Units) -> dict[str, Any] | None:
+    """What the tolerances leave open: of the value, and of the curve constant by constant."""
+    if solution.value_band is None:
+        return None
+    changes = [
+        {
+            "constant": change.constant,
+            "arcs": [_arc("", change.curve, {name: units.function(name) for name in change.curve.functions},
+                          problem.independent_unit)],
+        }
+        for change in solution.changes
+    ]  # fmt: skip
+    return {"value": _in(solution.value_band, problem.value_unit), "curve": changes}
+
+
+def _branch(solution: Solution, problem: Problem) -> dict[str, Any] | None:
+    """The points of a continuation and its folds."""
+    branch = solution.branch
+    if branch is None:
+        return None
+    unit = next(constant.unit for constant in problem.constants if constant.name == branch.constant)
+    points, folds = (
+        [{"at": _in(p.at, unit), "value": _in(p.value, problem.value_unit), "leg": p.leg} for p in some]
+        for some in (branch.points, branch.folds)
+    )
+    return {"constant": branch.constant, "unit": unit.text, "points": points, "folds": folds, "end": branch.end,
+            "error": _finite(branch.error)}  # fmt: skip
 
 
 def _sweep(solution: Solution, problem: Problem, units: _Units) -> dict[str, Any] | None:

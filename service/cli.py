@@ -87,6 +87,7 @@ def serve(host: str | None, port: int | None, data: Path | None, workers: int | 
 @click.option("--rows", type=int, help="Rows of the table, evenly spaced, both ends included.")
 @click.option("--step", type=float, help="Step of the table in the unit of the independent variable.")
 @click.option("--derivatives", type=click.IntRange(0, 3), default=0, help="Derivatives in the table.")
+@click.option("--sigma", is_flag=True, help="In the table, one standard deviation from tolerances.")
 @click.option("--sweep", type=click.Path(path_type=Path, dir_okay=False), help="Write the sweep likewise.")
 def solve(
     file: str,
@@ -95,6 +96,7 @@ def solve(
     rows: int | None,
     step: float | None,
     derivatives: int,
+    sigma: bool,
     sweep: Path | None,
 ) -> None:
     """Solve the problem in FILE (- for standard input, or the name of a sample)."""
@@ -103,7 +105,7 @@ def solve(
     sweep_suffix = _suffix(sweep, None, None)
     result = _solved(body)
     if table is not None:
-        _write_table(result, table, suffix, rows=rows, step=step, derivatives=derivatives)
+        _write_table(result, table, suffix, rows=rows, step=step, derivatives=derivatives, sigma=sigma)
     if sweep is not None:
         _write_sweep(result, sweep, sweep_suffix)
     if as_json:

@@ -114,10 +114,18 @@ class SlopeOfConstant(Part):
     contribution: float | None = Field(description="how far one standard deviation moves the value, in its unit")
 
 
+class ChangeOfCurve(Part):
+    """What one standard deviation of a constant does to the curve at fixed places, to first order; units as there."""
+
+    constant: str
+    arcs: list[ArcPieces]
+
+
 class Band(Part):
     """What the tolerances of the constants leave open: one standard deviation, to first order."""
 
     value: float | None = Field(description="standard deviation of the value, in its unit")
+    curve: list[ChangeOfCurve] = Field(description="one for each tolerance; their squares add up")
 
 
 class Multipliers(Part):
@@ -161,6 +169,25 @@ class SweepDocument(Part):
     parameters: dict[str, str] = Field(description="unit of each parameter")
     points: list[PointOfSweep] = Field(description="row by row: the values of the last constant run fastest")
     curves: list[CurveOfSweep] = Field(description="of some points; units as in `curve`")
+
+
+class PointOfBranch(Part):
+    """A stationary curve for one value of the constant."""
+
+    at: float | None
+    value: float | None
+    leg: int = Field(description="how many folds lie before it")
+
+
+class ContinuationDocument(Part):
+    """A branch of stationary curves followed in one constant, around folds."""
+
+    constant: str
+    unit: str
+    points: list[PointOfBranch]
+    folds: list[PointOfBranch] = Field(description="where the constant turns back: two solutions meet and vanish")
+    end: str = Field(description="why the branch ends, in a sentence")
+    error: float | None = Field(description="largest local error of the mesh along the branch, relative")
 
 
 class FindingOfDiagnosis(Part):
@@ -389,6 +416,7 @@ class ResultDocument(Part):
     )
     slopes: list[SlopeOfConstant] = Field(description="empty where no optimum was found")
     band: Band | None = Field(description="null where no constant has a tolerance")
+    continuation: ContinuationDocument | None = Field(description="null where none was asked for")
     sweep: SweepDocument | None = Field(description="null where no constant is swept")
     diagnosis: DiagnosisDocument | None
     notes: list[str]

@@ -117,6 +117,12 @@ def _lines(result: Mapping[str, Any]) -> Iterator[str]:
         for slope in slopes:
             yield f"  {display.quantity(slope['slope'], slope['unit'])}  {_constant(slope)}"
     yield from _sweep(result)
+    if (branch := result["continuation"]) is not None:
+        yield ""
+        yield f"Continuation in {branch['constant']}: {len(branch['points'])} points. {branch['end']}"
+        for fold in branch["folds"]:
+            at, value = display.quantity(fold["at"], branch["unit"], 9), result["value_unit"]
+            yield f"  fold at {branch['constant']} = {at}, value {display.quantity(fold['value'], value, 9)}"
     if result["notes"]:
         yield ""
         yield "Notes"

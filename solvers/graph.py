@@ -13,7 +13,7 @@ from solvers.curve import Curve
 from solvers.gauge import Gauged
 from solvers.limits import number
 from solvers.regraph import regraph
-from solvers.solution import Check, Finding, Price
+from solvers.solution import Change, Check, Finding, Price
 
 Array = NDArray[np.float64]
 
@@ -21,8 +21,17 @@ MIDDLES = (np.arange(16) + 0.5) / 16
 """Where every interval is looked at."""
 
 
-def as_graph(gauged: Gauged, shape: Curve, multipliers: Curve, factor: float) -> tuple[Curve, Curve]:
-    """Curve and costates as functions of x; `factor` turns costates of the gauged problem into the original's."""
+STEEPEST = 1e-9
+"""Speed along x, relative to its greatest, below which the curve counts as no steeper: there y(x) is vertical."""
+
+
+def as_graph(
+    gauged: Gauged, shape: Curve, multipliers: Curve, factor: float, changes: tuple[Change, ...] = ()
+) -> tuple[Curve, Curve, tuple[Change, ...]]:
+    """Curve, costates and changes of the curve as functions of x.
+
+    `factor` turns costates of the gauged problem into the original's.
+    """
     x = gauged.original.independent
     functions: dict[str, Callable[[Array], Array]] = {}
     names = [unknown.name for unknown in gauged.original.unknowns]
@@ -31,12 +40,19 @@ def as_graph(gauged: Gauged, shape: Curve, multipliers: Curve, factor: float) ->
         functions[name + "'"] = partial(_slope, shape, x, name)
     costates = {name: partial(_scaled, multipliers, name, factor) for name in names if name in multipliers.functions}
     wanted = functions | {f"costate {name}": function for name, function in costates.items()}
+    for change in changes:
+        for name in names:
+            wanted[f"{change.constant} {name}"] = partial(_changed, shape, change.curve, x, name)
     graph = regraph(shape.breaks, partial(shape.evaluate, x), wanted, names[0])
     breaks = graph.breaks.copy()
     breaks[0], breaks[-1] = _end(gauged, 0, breaks[0]), _end(gauged, -1, breaks[-1])
     return (
         Curve(breaks, {name: graph.functions[name] for name in functions}),
         Curve(breaks, {name: graph.functions[f"costate {name}"] for name in costates}),
+        tuple(
+            Change(c.constant, Curve(breaks, {name: graph.functions[f"{c.constant} {name}"] for name in names}))
+            for c in changes
+        ),
     )
 
 
@@ -81,6 +97,13 @@ def _end(gauged: Gauged, place: int, found: float) -> float:
 
 def _slope(shape: Curve, x: str, name: str, at: Array) -> Array:
     return shape.evaluate(name + "'", at) / np.maximum(shape.evaluate(x + "'", at), 1e-300)
+
+
+def _changed(shape: Curve, change: Curve, x: str, name: str, at: Array) -> Array:
+    """The change at a fixed x: what moves along the curve is no change of it."""
+    speed = shape.evaluate(x + "'", at)
+    slope = shape.evaluate(name + "'", at) / np.maximum(speed, STEEPEST * max(float(speed.max()), 1e-300))
+    return np.asarray(change.evaluate(name, at) - slope * change.evaluate(x, at))
 
 
 def _scaled(curve: Curve, name: str, factor: float, at: Array) -> Array:

@@ -42,7 +42,7 @@ def stationary_point(program: Program, start: Start, watch: Callable[[Iterate], 
             outcome = Outcome.STOPPED
             break
         if size <= TOLERANCE:
-            outcome = Outcome.SOLVED if system.within_limits(z) else Outcome.FAILED
+            outcome = Outcome.SOLVED if within_limits(program, z) else Outcome.FAILED
             break
         step = system.step(z, multipliers, residual)
         if step is None:
@@ -56,7 +56,7 @@ def stationary_point(program: Program, start: Start, watch: Callable[[Iterate], 
             share /= 2
         else:
             # At the edge of what floating-point numbers can tell, the residual falls no further.
-            outcome = Outcome.ACCEPTABLE if size < 1e-8 and system.within_limits(z) else Outcome.FAILED
+            outcome = Outcome.ACCEPTABLE if size < 1e-8 and within_limits(program, z) else Outcome.FAILED
             break
         z, multipliers, residual = moved, changed, after
     seconds = time.perf_counter() - began
@@ -119,9 +119,9 @@ class _System:
         multipliers[self.equal] += share * step[len(self.free) :]
         return z, multipliers
 
-    def within_limits(self, z: Array) -> bool:
-        """Whether all inequalities hold; none may bind, for nothing here would hold the point on it."""
-        program = self.program
-        g = program.numbers.constraints(z)
-        inside = np.all(z >= program.lower - 1e-9) and np.all(z <= program.upper + 1e-9)
-        return bool(inside and np.all(g >= program.row_lower - 1e-7) and np.all(g <= program.row_upper + 1e-7))
+
+def within_limits(program: Program, z: Array) -> bool:
+    """Whether all inequalities hold; none may bind, for nothing here would hold the point on it."""
+    g = program.numbers.constraints(z)
+    inside = np.all(z >= program.lower - 1e-9) and np.all(z <= program.upper + 1e-9)
+    return bool(inside and np.all(g >= program.row_lower - 1e-7) and np.all(g <= program.row_upper + 1e-7))

@@ -234,6 +234,14 @@ class Sweep:
 
 
 @dataclass(frozen=True, slots=True)
+class Continuation:
+    """A constant in which the branch of solutions is followed, and the value (SI) towards which."""
+
+    constant: str
+    to: float
+
+
+@dataclass(frozen=True, slots=True)
 class Problem:
     """Everything that the solver has to know.
 
@@ -263,6 +271,7 @@ class Problem:
     touches: tuple[Touch, ...] = ()  # the same
     calm: tuple[Calm, ...] = ()  # the same
     start: Variation = field(default_factory=Variation)  # the same
+    continuation: Continuation | None = None
     sweeps: tuple[Sweep, ...] = ()  # none, one, or two whose values make a grid
     options: Options = field(default_factory=Options)
     independent_unit: Unit = PLAIN

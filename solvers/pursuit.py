@@ -300,12 +300,12 @@ def _begin(pursuit: Pursuit, minimise_: _Minimiser) -> tuple[Program, Minimum] |
         mesh = first_mesh(stretches, FIRST_INTERVALS * (1 if attempt < 2 else 2))
         where = layout(compiled, mesh)
         for guess in guesses(compiled, mesh, where)[: 2 if attempt else 3]:
-            program = _program(compiled, mesh, where, guess.z)
+            program = make_program(compiled, mesh, where, guess.z)
             doubtful = {"ipopt.max_iter": FEW_ITERATIONS} if End.INFEASIBLE in ends else {}
             minimum = minimise_(program, Start(guess.z / program.scale), options | doubtful)
             if minimum.outcome is Outcome.FAILED and _outgrown(minimum):
                 z = minimum.z * program.scale
-                program = _program(compiled, mesh, where, z)
+                program = make_program(compiled, mesh, where, z)
                 minimum = minimise_(program, Start(z / program.scale), options | doubtful)
             if minimum.outcome in SOLVED:
                 return program, minimum
@@ -336,7 +336,7 @@ def _begin_from(
     mesh = mesh or first_mesh(len(pursuit.problem.places) - 1)
     where = layout(pursuit.compiled, mesh)
     z = related(start, pursuit.compiled, mesh, where)
-    program = _program(pursuit.compiled, mesh, where, z)
+    program = make_program(pursuit.compiled, mesh, where, z)
     z = z / program.scale
     settings: tuple[dict[str, Any], ...] = ({"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 1e-3}, {})
     for options in settings:
@@ -377,7 +377,7 @@ def _least_violation(pursuit: Pursuit, minimise_: _Minimiser) -> tuple[Program, 
     for start in starts:
         varied = replace(compiled.lowered, problem=replace(pursuit.problem, start=start))
         z = guesses(replace(compiled, lowered=varied), mesh, where)[0].z
-        program = _program(compiled, mesh, where, z)
+        program = make_program(compiled, mesh, where, z)
         found = program, minimise_.relax(program, z / program.scale)
         solved = found[1].minimum.outcome in SOLVED
         if best is None or (solved and not (best[1].minimum.outcome in SOLVED and found[1].total >= best[1].total)):
@@ -395,7 +395,7 @@ def _least_violation(pursuit: Pursuit, minimise_: _Minimiser) -> tuple[Program, 
         mesh = first_mesh(stretches, FIRST_INTERVALS * 2**doubling)
         where = layout(compiled, mesh)
         z = carry(_of_least_violation(program, least), mesh, where).z
-        finer = _program(compiled, mesh, where, z, program.scales)
+        finer = make_program(compiled, mesh, where, z, program.scales)
         again = minimise_.relax(finer, z / finer.scale)
         if again.minimum.outcome not in SOLVED:
             break
@@ -421,7 +421,7 @@ def _runs_away(program: Program, minimum: Minimum) -> bool:
     return not np.isfinite(minimum.value) or minimum.value < -1e6
 
 
-def _program(compiled: Compiled, mesh: Mesh, where: Layout, z: Array, before: Scales | None = None) -> Program:
+def make_program(compiled: Compiled, mesh: Mesh, where: Layout, z: Array, before: Scales | None = None) -> Program:
     """A program whose scales come from values (SI) on its mesh, and do not fall far below those of the mesh before."""
     scales = find_scales(compiled, where, z, before)
     return transcribe(compiled, mesh, where, scales, find_row_sizes(compiled, where, scales, z))
@@ -442,7 +442,7 @@ def _next(path: Trajectory, mesh: Mesh, minimise_: _Minimiser) -> tuple[Program,
     compiled = path.program.compiled
     where: Layout = layout(compiled, mesh)
     carried = carry(path, mesh, where)
-    program = _program(compiled, mesh, where, carried.z, path.program.scales)
+    program = make_program(compiled, mesh, where, carried.z, path.program.scales)
     warm = carried.onto(program)
     for start, options in ((warm, {"ipopt.max_iter": FEW_ITERATIONS}), (Start(warm.z), {})):
         minimum = minimise_(program, start, options)

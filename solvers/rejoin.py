@@ -38,6 +38,7 @@ def rejoin(beside: Beside, found: Solution) -> Solution:
         notes=tuple(notes),
         sweep=tuple(_point(beside, point) for point in found.sweep),
         extremals=tuple(replace(one, solution=rejoin(beside, one.solution)) for one in found.extremals),
+        changes=(),
         switches=tuple(sorted(set(_switches(beside, found, places)), key=lambda switch: switch.place)),
     )
 

@@ -10,7 +10,9 @@ memory).
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from collections.abc import Callable
+from dataclasses import replace
+from functools import cached_property
 from typing import Any
 
 import numpy as np
@@ -19,8 +21,10 @@ from numpy.typing import NDArray
 
 from solvers.curve import Curve
 from solvers.evaluation import end_inputs, point_inputs
+from solvers.layout import calm_entries
 from solvers.lowering import primed
 from solvers.sensitivity import Shift, end_weights, limit_shifts, point_weights
+from solvers.solution import Change
 from solvers.trajectory import Trajectory, curve
 
 Array = NDArray[np.float64]
@@ -39,11 +43,10 @@ class SingularError(ArithmeticError):
 
 
 class Response:
-    """The factorised optimality system at a solution.  Raises `SingularError`."""
+    """The optimality system at a solution: its matrix in the free variables and the active rows (scaled)."""
 
     def __init__(self, path: Trajectory) -> None:
         from scipy.sparse import bmat, triu
-        from scipy.sparse.linalg import splu
 
         self.path, program = path, path.program
         numbers, size = program.numbers, abs(program.value_scale)
@@ -57,47 +60,74 @@ class Response:
         self.free, active = np.flatnonzero(self.sides == 0), np.flatnonzero(self.row_sides)
         block = self.jacobian[active][:, self.free]
         says = np.asarray(abs(block).sum(axis=1)).ravel() > 0  # a row without free variables says nothing more
+        says &= ~np.isin(active, self._repeated())
         self.active, block = active[says], block[np.flatnonzero(says)]
-        matrix = bmat([[self.hessian[self.free][:, self.free], block.T], [block, None]], format="csc")
+        self.matrix = bmat([[self.hessian[self.free][:, self.free], block.T], [block, None]], format="csc")
+
+    def _repeated(self) -> Indices:
+        """Rows that keep a control calm and say no more than others do: its values rest on a limit in places."""
+        from scipy.linalg import qr
+
+        program = self.path.program
+        first = program.rows.rims + len(program.compiled.rims)
+        owners = np.array([owner for _, owner, _ in calm_entries(program.compiled, program.mesh)], dtype=np.int64)
+        repeated: list[int] = []
+        for owner in np.unique(owners):
+            own = first + np.flatnonzero(owners == owner)
+            block = self.jacobian[own][:, self.free]
+            triangle, order = qr(block[:, np.unique(block.indices)].toarray().T, mode="r", pivoting=True)
+            size = np.abs(np.diag(triangle[: len(own)]))
+            rank = int(np.count_nonzero(size > 1e-10 * max(float(size.max(initial=0.0)), 1e-300)))
+            repeated += own[order[rank:]].tolist()
+        return np.array(repeated, dtype=np.int64)
+
+    @cached_property
+    def _solve(self) -> Callable[[Array], Array]:
+        """Solves with the matrix, which is factorised once."""
+        from scipy.sparse.linalg import splu
+
         try:
-            self._solve = splu(matrix).solve
+            return splu(self.matrix).solve  # type: ignore[no-any-return]
         except RuntimeError as error:  # exactly singular
             raise SingularError from error
 
     def to(self, index: int, shift: Shift) -> Array:
         """The change (SI) of all variables per unit of the constant with this index, whose limits shift like this."""
-        program, path = self.path.program, self.path
-        gradient, rows = by_constant(path, index, shift)
-        moved = np.where(self.sides < 0, shift.lower, shift.upper) / program.scale
-        moved[self.free] = 0.0
-        moved[program.layout.places[~np.isin(program.layout.places, self.free)]] = 0.0  # these are in `by_constant`
-        limits = np.where(self.row_sides < 0, shift.row_lower, shift.row_upper) / program.row_scale
-        right = -np.concatenate([
-            gradient[self.free] + (self.hessian @ moved)[self.free],
-            (rows - limits + self.jacobian @ moved)[self.active],
-        ])  # fmt: skip
-        size = abs(path.program.compiled.constants[index]) or 1.0
-        found = self._checked(right, NOTHING / size)
-        change = moved
+        program = self.path.program
+        size = abs(program.compiled.constants[index]) or 1.0
+        found = self._checked(-self.push(index, shift), NOTHING / size)
+        change = self._carried(shift)
         change[self.free] = found[: len(self.free)]
         change = change * program.scale
         fixed = program.layout.places[~np.isin(program.layout.places, self.free)]
         change[fixed] = shift.lower[fixed]
         return np.asarray(change)
 
-    def parameters(self) -> Array:
-        """The block of the inverse matrix that belongs to the parameters (SI): twice the inverse of the second
-        derivatives of the least value by them, from which covariances of fits are made."""
+    def push(self, index: int, shift: Shift) -> Array:
+        """What one unit of the constant does to the system's left side, the free variables held (scaled)."""
+        gradient, rows = by_constant(self.path, index, shift)
+        moved = self._carried(shift)
+        limits = np.where(self.row_sides < 0, shift.row_lower, shift.row_upper) / self.path.program.row_scale
+        return np.concatenate([
+            gradient[self.free] + (self.hessian @ moved)[self.free],
+            (rows - limits + self.jacobian @ moved)[self.active],
+        ])  # fmt: skip
+
+    def residual(self) -> Array:
+        """The system's left side: slopes of the Lagrangian, then how far the active rows are from their limits."""
+        program, path = self.path.program, self.path
+        z, rows = path.z / program.scale, path.row_multipliers * program.row_scale / abs(program.value_scale)
+        slopes = program.numbers.gradient(z) + self.jacobian.T @ rows
+        limits = np.where(self.row_sides < 0, program.row_lower, program.row_upper)
+        return np.concatenate([slopes[self.free], (program.numbers.constraints(z) - limits)[self.active]])
+
+    def _carried(self, shift: Shift) -> Array:
+        """How limits carry along the variables that rest on them (scaled); places are in `by_constant`."""
         program = self.path.program
-        own = program.layout.parameters
-        where = np.searchsorted(self.free, own)
-        columns = []
-        for place in where:
-            right = np.zeros(len(self.free) + len(self.active))
-            right[place] = 1.0
-            columns.append(self._checked(right, 0.0)[where])
-        scale = program.scale[own]
-        return np.array(columns).T * scale[:, None] * scale / abs(program.value_scale)
+        moved = np.where(self.sides < 0, shift.lower, shift.upper) / program.scale
+        moved[self.free] = 0.0
+        moved[program.layout.places[~np.isin(program.layout.places, self.free)]] = 0.0
+        return np.asarray(moved)
 
     def _checked(self, right: Array, nothing: float) -> Array:
         """The solution; `SingularError` where a slightly disturbed matrix would give another one, beyond `nothing`."""
@@ -165,14 +195,6 @@ def _first(function: Any, *arguments: Array) -> Array:
     """The first output of a function at many sets of inputs; zeros of its pattern are filled in."""
     made = function.map(len(arguments[0]))(*(argument.T for argument in arguments))
     return np.asarray(made[0] if isinstance(made, tuple | list) else made).T
-
-
-@dataclass(frozen=True, slots=True)
-class Change:
-    """The change of the curve with one constant, for one standard deviation of it."""
-
-    constant: str
-    curve: Curve
 
 
 def changes(path: Trajectory) -> tuple[Change, ...]:

@@ -77,6 +77,14 @@ class Slope:
 
 
 @dataclass(frozen=True, slots=True)
+class Change:
+    """What one standard deviation of a constant does to the curve, to first order: at fixed places."""
+
+    constant: str
+    curve: Curve
+
+
+@dataclass(frozen=True, slots=True)
 class Finding:
     """One line of a diagnosis: which condition or sub-expression, by how much, where."""
 
@@ -208,6 +216,26 @@ class SweepPoint:
 
 
 @dataclass(frozen=True, slots=True)
+class BranchPoint:
+    """A stationary curve for one value (SI) of the constant; `leg` counts the folds before it."""
+
+    at: float
+    value: float
+    leg: int
+
+
+@dataclass(frozen=True, slots=True)
+class Branch:
+    """What was found along a branch: its points in order, the points of its folds, and why it ends."""
+
+    constant: str
+    points: tuple[BranchPoint, ...]
+    folds: tuple[BranchPoint, ...]
+    end: str
+    error: float  # largest local error of the mesh, relative
+
+
+@dataclass(frozen=True, slots=True)
 class Solution:
     """The outcome of `solvers.solve.solve`.
 
@@ -227,6 +255,8 @@ class Solution:
     switches: tuple[SwitchPlace, ...] = ()  # those that were made unknowns of the problem
     prices: tuple[Price, ...] = ()
     slopes: tuple[Slope, ...] = ()
+    changes: tuple[Change, ...] = ()  # of the curve, with the constants that have a tolerance
+    branch: Branch | None = None
     sweep: tuple[SweepPoint, ...] = ()  # row by row: the values of the last constant run fastest
     checks: tuple[Check, ...] = ()
     diagnosis: Diagnosis | None = None

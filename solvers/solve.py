@@ -6,6 +6,7 @@ import time
 from collections.abc import Mapping
 from dataclasses import replace
 from functools import cache
+from itertools import count
 from types import MappingProxyType
 
 import numpy as np
@@ -32,7 +33,7 @@ from solvers.ipopt import FLOOR
 from solvers.layout import layout
 from solvers.lowering import lower, primed
 from solvers.prices import prices
-from solvers.problem import Problem, Seek
+from solvers.problem import Continuation, Problem, Seek
 from solvers.pursuit import End, Pursuit, first_mesh, go_on, pursue
 from solvers.rejoin import rejoin
 from solvers.scaling import find_scales
@@ -40,10 +41,10 @@ from solvers.sensitivity import slopes
 from solvers.sharpen import sharpen
 from solvers.signs import never_negative, positive, positive_along
 from solvers.slack import SLACK, rounded_functions, with_slacks
-from solvers.solution import Check, Price, Progress, Slope, Solution, SwitchPlace, Verdict, Watch
+from solvers.solution import BranchPoint, Change, Check, Price, Progress, Slope, Solution, SwitchPlace, Verdict, Watch
 from solvers.structure import present_switches
 from solvers.sweep import Found, Tools, sweep
-from solvers.trajectory import costate_curve, curve
+from solvers.trajectory import Trajectory, costate_curve, curve
 from solvers.usage import table_notes
 from solvers.verdict import judge
 
@@ -56,6 +57,14 @@ PROVED = (Verdict.GLOBAL_MINIMUM, Verdict.GLOBAL_MAXIMUM)
 
 NO_OPTIMUM_FOUND = (Verdict.NOT_VERIFIED, Verdict.BEST_FOUND)
 """Verdicts on a curve whose multipliers need not be those of an optimum."""
+
+UNDETERMINED = (
+    "How the tolerances of the constants change the curve is left out: the optimality conditions do not determine it "
+    "here (their matrix is singular, or nearly so)."
+)
+
+LARGEST = 60_000
+"""Unknowns of a mesh up to which the change of the whole curve is found: its system is factorised once more."""
 
 SHARE = 0.6
 """Share of the remaining time that the search for switches may take."""
@@ -90,10 +99,16 @@ def _from_starts(problem: Problem, watch: Watch | None) -> Solution:
     deadline = in_seconds(problem.options.time_limit)
     if problem.options.starts > 1:
         solution = solve_from_starts(problem, watch, _solve_once, _first_look(problem)[0])
-        return _with_sweep(solution, problem, None, watch, deadline) if problem.sweeps else solution
-    found = _found(problem, watch, deadline)
-    solution = _solution(problem, found, began)
-    return _with_sweep(solution, problem, found, watch, deadline) if problem.sweeps else solution
+        varied = problem.sweeps or problem.continuation
+        found = _found(problem, watch, deadline) if varied else None  # variants begin at the default guess
+    else:
+        found = _found(problem, watch, deadline)
+        solution = _solution(problem, found, began)
+    if problem.sweeps and found is not None:
+        solution = _with_sweep(solution, problem, found, watch, deadline)
+    if problem.continuation is not None and found is not None:
+        solution = _with_branch(solution, problem.continuation, found, watch, deadline)
+    return solution
 
 
 def _solve_once(problem: Problem, watch: Watch | None) -> Solution:
@@ -102,18 +117,48 @@ def _solve_once(problem: Problem, watch: Watch | None) -> Solution:
     return _solution(problem, _found(problem, watch, in_seconds(problem.options.time_limit)), began)
 
 
-def _with_sweep(
-    solution: Solution, problem: Problem, found: Found | None, watch: Watch | None, deadline: Deadline
+def _with_branch(
+    solution: Solution, continuation: Continuation, found: Found, watch: Watch | None, deadline: Deadline
 ) -> Solution:
-    """The solution with the points of the sweep, which starts from the default guess where there were several."""
+    """The solution with the branch through it."""
+    if not found.pursuit.solved:
+        return solution
+    from solvers.branch import POINTS, follow  # here, so that SciPy is loaded only where it is needed
+
+    began, counted = time.perf_counter(), count(1)
+
+    def stop(point: BranchPoint) -> bool:
+        sign = Progress("point", 0, 0, 0, 0, value(point.value), point=(next(counted), POINTS))
+        return watch is not None and watch(sign)
+
+    def value(found_value: float) -> float:
+        squared = found.gauged is not None and found.gauged.squared
+        return float(np.sqrt(found_value)) if squared else found_value
+
+    path = unambiguous(found.pursuit.paths[-1])
+    branch = follow(path, continuation.constant, continuation.to, deadline, stop)
+    points, folds = (tuple(replace(p, value=value(p.value)) for p in some) for some in (branch.points, branch.folds))
+    times = {**solution.times, "continuation": time.perf_counter() - began}
+    return replace(solution, branch=replace(branch, points=points, folds=folds), times=times)
+
+
+def _with_sweep(
+    solution: Solution, problem: Problem, found: Found, watch: Watch | None, deadline: Deadline
+) -> Solution:
+    """The solution with the points of the sweep."""
     began = time.perf_counter()
     tools = Tools(
         alone=lambda other: _found(other, None, deadline),
         judge=lambda other, at, drawn, known: _solution(
             other, at, time.perf_counter(), brief=True, drawn=drawn, known=known
         ),
+        fits=lambda other, at: (
+            at.gauged is None
+            or not at.gauged.squared
+            or _rightly_squared(at.gauged, at.pursuit, not never_negative(other))
+        ),
     )
-    points = sweep(problem, found or _found(problem, watch, deadline), tools, watch, deadline)
+    points = sweep(problem, found, tools, watch, deadline)
     return replace(solution, sweep=points, times={**solution.times, "sweep": time.perf_counter() - began})
 
 
@@ -233,9 +278,12 @@ def _solution(
     shape, multipliers = curve(path), Curve(path.breaks, {})
     bought: tuple[Price, ...] = ()
     depends: tuple[Slope, ...] = ()
+    altered: tuple[Change, ...] = ()
+    left_out = ""
     if not brief:
         multipliers, bought = costate_curve(path), prices(path)
         depends = () if verdict in NO_OPTIMUM_FOUND else slopes(path)
+        altered, left_out = _changes(path, depends)
     if gauged is not None:
         root = float(np.sqrt(value)) if gauged.squared else 1.0
         factor = 1 / (2 * root) if gauged.squared else 1.0
@@ -245,7 +293,7 @@ def _solution(
         bought = prices_of_original(bought, factor)
         depends = tuple(replace(slope, slope=factor * slope.slope) for slope in depends)
         if drawn:
-            shape, multipliers = as_graph(gauged, shape, multipliers, factor)
+            shape, multipliers, altered = as_graph(gauged, shape, multipliers, factor, altered)
         if gauged.squared:
             value, value_error_or_none = root, value_error * factor if value_error_or_none is not None else None
     kept = {name: functions for name, functions in shape.functions.items() if not name.startswith(SLACK + " ")}
@@ -259,13 +307,14 @@ def _solution(
         costates=multipliers,
         prices=bought,
         slopes=depends,
+        changes=altered,
         checks=made,
         diagnosis=diagnosis,
         meshes=tuple(pursuit.steps),
         iterations=pursuit.iterations,
         times=times | {"checks": time.perf_counter() - solved_at},
-        fit=fit(path),
-        notes=tuple(_notes(problem, pursuit, gauged)),
+        fit=None if brief else fit(path),
+        notes=(*_notes(problem, pursuit, gauged), *([left_out] if left_out else [])),
         switches=_switches(pursuit, gauged),
     )
 
@@ -296,6 +345,20 @@ def _with_uprights(pursuit: Pursuit, gauged: Gauged) -> Pursuit:
     if found and pursuit.end in (End.CONVERGED, End.SETTLED):
         return replace(pursuit, end=End.TORN, findings=found)
     return pursuit
+
+
+def _changes(path: Trajectory, depends: tuple[Slope, ...]) -> tuple[tuple[Change, ...], str]:
+    """How the tolerances of the constants change the curve; where that is left out, why."""
+    if not any(slope.tolerance for slope in depends):
+        return (), ""
+    if path.program.layout.size > LARGEST:
+        return (), f"How the tolerances change the curve is left out: the mesh has more than {LARGEST:,} unknowns."
+    from solvers.response import SingularError, changes  # here, so that SciPy is loaded only where it is needed
+
+    try:
+        return changes(path), ""
+    except SingularError:
+        return (), UNDETERMINED
 
 
 def _notes(problem: Problem, pursuit: Pursuit, gauged: Gauged | None) -> list[str]:

@@ -75,6 +75,7 @@ class Tools:
     alone: Callable[[Problem], Found]
     judge: Callable[[Problem, Found, bool, Mapping[str, Check]], Solution]
     """With the curve where it is True, and with the checks that need not be made."""
+    fits: Callable[[Problem, Found], bool]  # whether a point's form says the same as its problem
 
 
 def sweep(
@@ -253,7 +254,7 @@ class _Sweep:
         if minimum.outcome not in SOLVED:
             return None
         pursuit = self._pursuit(neighbour.pursuit, trajectory(program, minimum), minimum, measured)
-        if pursuit is None:
+        if pursuit is None or not self.tools.fits(problem, Found(pursuit, gauged)):
             return None
         return _Step(Found(pursuit, gauged), near, len(pursuit.paths) == 1, minimum.convex)
 

@@ -71,10 +71,19 @@ def result(run_id: str) -> str:
     return f"{api_run(run_id)}/result"
 
 
-def table(run_id: str, suffix: str, *, rows: str = "", step: str = "", columns: str = "", derivatives: str = "") -> str:
+def table(
+    run_id: str,
+    suffix: str,
+    *,
+    rows: str = "",
+    step: str = "",
+    columns: str = "",
+    derivatives: str = "",
+    sigma: str = "",
+) -> str:
     """The table of a result as `csv`, `json`, `xlsx` or `npz`."""
     path = f"{api_run(run_id)}/table.{suffix}"
-    return _with_query(path, rows=rows, step=step, columns=columns, derivatives=derivatives)
+    return _with_query(path, rows=rows, step=step, columns=columns, derivatives=derivatives, sigma=sigma)
 
 
 def sweep(run_id: str, suffix: str) -> str:

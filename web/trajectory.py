@@ -130,6 +130,22 @@ def read_costates(result: Mapping[str, Any]) -> Trajectory | None:
     return _read(costates, curve["independent"]) if curve and costates and costates["arcs"] else None
 
 
+def read_changes(result: Mapping[str, Any]) -> tuple[Trajectory, ...]:
+    """What one standard deviation of each constant does to the curve; () where that is not known."""
+    curve = result.get("curve")
+    changes = (result.get("band") or {}).get("curve") or ()
+    return tuple(_read({"arcs": c["arcs"], "units": curve["units"]}, curve["independent"]) for c in changes if curve)
+
+
+def band(changes: Sequence[Trajectory], name: str, derivative: int, places: Array) -> Array | None:
+    """One standard deviation of a function at places (independent tolerances); None where it is not known."""
+    if not changes or any(arc.coefficients(name, derivative) is None for change in changes for arc in change.arcs):
+        return None
+    parts = [np.concatenate([arc.evaluate(name, derivative, some) for arc, some in change.by_arc(places)])
+             for change in changes]  # fmt: skip
+    return np.asarray(np.sqrt(np.sum(np.square(parts), axis=0)))
+
+
 def read_sweep(result: Mapping[str, Any]) -> list[tuple[int, Trajectory]]:
     """The curves of a sweep with the index of their point; the units are those of the curve where there is one."""
     sweep, curve = result.get("sweep"), result.get("curve") or {}

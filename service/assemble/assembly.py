@@ -25,7 +25,7 @@ from service.assemble.relations import Sides, conditions, convert, says_nothing,
 from service.assemble.resolving import wrong_names
 from service.assemble.scopes import out_of_scope, without_place
 from service.assemble.spots import Spot, spot_of
-from service.assemble.sweeps import check_extremes, check_sweep_names, read_sweeps
+from service.assemble.sweeps import check_extremes, check_varied_names, read_continuation, read_sweeps
 from service.complaints import Complaint, Stage, refuse
 from service.spec import Document
 from service.units import Measure
@@ -50,7 +50,7 @@ def assemble(document: Document) -> Problem:
     _check_length(document)
     names = declare(document)
     check_guess_names(document, names)
-    check_sweep_names(document, names)
+    check_varied_names(document, names)
     measured = read_tables(document, names)
     formulas = parse_all(document, names, measured.tables)
     _check_size(formulas)
@@ -81,7 +81,8 @@ def assemble(document: Document) -> Problem:
     builder = _Builder(document, formulas, meaning, declared, guesses, units, places, sides, readings)
     problem = covered(builder.problem(value_unit, tuple(measured.tables.values())), formulas, meaning, builder.settle)
     check(problem)
-    problem = replace(problem, sweeps=read_sweeps(document, names, declared))
+    continuation = read_continuation(document, names, declared)
+    problem = replace(problem, continuation=continuation, sweeps=read_sweeps(document, names, declared))
     check_extremes(problem, document, names)
     return problem
 

@@ -1,4 +1,4 @@
-"""The values of constants for which a problem is solved too, in SI."""
+"""Which constants are varied: the values of sweeps, and the way of a continuation, in SI."""
 
 from __future__ import annotations
 
@@ -15,22 +15,24 @@ from service.assemble.names import Kind, Names
 from service.complaints import Complaint, Refused, Stage, closest, pointer, refuse
 from service.spec import Document
 from service.spec.model import SweepPart
-from solvers.problem import Problem, Sweep
+from solvers.problem import Continuation, Problem, Sweep
 
 MOST_POINTS = 2_000
 """Points of a sweep, all values of two constants together."""
 
 
-def check_sweep_names(document: Document, names: Names) -> None:
-    """What is swept is a constant.  Raises `Refused` (stage names)."""
+def check_varied_names(document: Document, names: Names) -> None:
+    """What is varied is a constant.  Raises `Refused` (stage names)."""
     complaints = []
-    for name in document.sweep:
+    places = {name: pointer("sweep", name) for name in document.sweep}
+    if document.continuation is not None:
+        places[document.continuation.constant] = pointer("continuation", "constant")
+    for name, place in places.items():
         kind = names.kinds.get(names.written.get(name, name))
         if kind is not Kind.CONSTANT:
             near = closest(name, names.of(Kind.CONSTANT))
             what = f"“{name[:40]}” is {kind.value}" if kind else f"There is no “{name[:40]}”"
-            hint = f"Did you mean “{near}”?" if near else "Only constants are swept; declare it under constants."
-            place = pointer("sweep", name)
+            hint = f"Did you mean “{near}”?" if near else "Only constants are varied; declare it under constants."
             complaints.append(Complaint(place, None, "unknown-name", f"{what}; no values can be put in.", hint))
     refuse(Stage.NAMES, complaints)
 
@@ -49,6 +51,21 @@ def read_sweeps(document: Document, names: Names, declared: Declared) -> tuple[S
         refuse(Stage.UNITS, [beyond(pointer("sweep", name))] if not all(map(math.isfinite, values)) else [])
         sweeps.append(Sweep(names.written[name], values))
     return tuple(sweeps)
+
+
+def read_continuation(document: Document, names: Names, declared: Declared) -> Continuation | None:
+    """Raises `Refused` (stage conditions) where there is no way to go."""
+    part = document.continuation
+    if part is None:
+        return None
+    name = names.written[part.constant]
+    to = part.to * declared.units[name].factor
+    place = pointer("continuation", "to")
+    refuse(Stage.UNITS, [] if math.isfinite(to) else [beyond(place)])
+    if math.isclose(to, declared.constants[name].value, rel_tol=1e-9):
+        message = f"{part.constant} has this value already."
+        refuse(Stage.CONDITIONS, [Complaint(place, None, "empty-interval", message, "Choose another value.")])
+    return Continuation(name, to)
 
 
 def check_extremes(problem: Problem, document: Document, names: Names) -> None:

@@ -38,6 +38,7 @@ class Choice(BaseModel):
     )
     columns: str | None = Field(None, description="columns with primes, separated by commas, such as x,x',a")
     derivatives: int = Field(0, description="derivatives of every unknown, 0 to 3, where no columns are named")
+    sigma: bool = Field(False, description="beside every column one standard deviation from the constants' tolerances")
 
 
 TheChoice = Annotated[Choice, Query()]
@@ -167,7 +168,8 @@ def _table(run: Run, services: Services, choice: Choice) -> Table:
     if choice.columns is not None:
         columns = [name for part in choice.columns.split(",") if (name := part.strip())]
     try:
-        return table(result, rows=choice.rows, step=choice.step, columns=columns, derivatives=choice.derivatives)
+        return table(result, rows=choice.rows, step=choice.step, columns=columns, derivatives=choice.derivatives,
+                     sigma=choice.sigma)  # fmt: skip
     except TableError as error:
         raise _refused(error) from None
 

@@ -164,6 +164,13 @@ class SweepPart(Part):
         return self
 
 
+class ContinuationPart(Part):
+    """A branch of solutions followed in one constant, from its own value and around folds."""
+
+    constant: str = Field(max_length=40, description="Name of the constant")
+    to: Number = Field(description="Value, in its unit, towards which the branch is followed")
+
+
 class SolvePart(Part):
     """How far to go."""
 
@@ -221,6 +228,7 @@ class Document(Part):
     sweep: Annotated[dict[str, SweepPart], Field(
         max_length=2, description="Constant -> the values for which the problem is solved too; two constants: a grid",
         examples=[{"D": {"from": 1, "to": 4, "count": 31}}])] = {}  # fmt: skip
+    continuation: ContinuationPart | None = None
     solve: SolvePart = SolvePart()
 
     @model_validator(mode="after")

@@ -11,6 +11,7 @@ from pydantic_core import ErrorDetails
 from service.complaints import MOST, Complaint, closest, listing, pointer
 from service.spec.model import (
     ArcPart,
+    ContinuationPart,
     Document,
     FunctionalPart,
     IndependentPart,
@@ -138,7 +139,7 @@ def _members(location: tuple[str | int, ...]) -> tuple[str, ...]:
     parts: dict[str, type[BaseModel]] = {
         "independent": IndependentPart, "parameters": ParameterPart, "unknowns": UnknownPart,
         "functional": FunctionalPart, "arcs": ArcPart, "solve": SolvePart, "tables": TablePart,
-        "sweep": SweepPart, "observations": ObservationPart,
+        "sweep": SweepPart, "continuation": ContinuationPart, "observations": ObservationPart,
     }  # fmt: skip
     part = parts[str(location[0])] if location else Document
     return tuple(field.alias or name for name, field in part.model_fields.items())

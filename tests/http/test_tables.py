@@ -144,6 +144,23 @@ def test_a_sweep_is_solved_and_handed_over(client, post):
     assert "5 points" in client.get(run["links"]["page"], headers={"accept": "text/html"}).text
 
 
+def test_tolerances_stand_beside_the_columns_and_folds_in_the_result(client, post):
+    document = {
+        **LINE,
+        "constants": {"h": "2 m +/- 0.1 m"},
+        "endpoints": ["y(0) = 0", "y(3) = h"],
+        "continuation": {"constant": "h", "to": 3},
+    }
+    run = post(document, prefer="wait=60").json()
+    heading, rows = _rows(client.get(f"{run['links']['self']}/table.csv?rows=4&sigma=true").text)
+    assert heading == ["x [m]", "y [m]", "y sigma [m]"]
+    assert rows[:, 2] == pytest.approx([0, 0.1 / 3, 0.2 / 3, 0.1], abs=1e-8)
+    result = client.get(run["links"]["result"]).json()
+    assert result["band"]["value"] == pytest.approx(2 * 2 / 3 * 0.1)
+    assert result["continuation"]["folds"] == []
+    assert result["continuation"]["end"] == "The branch reaches the value asked for."
+
+
 def test_a_run_without_a_sweep_says_so(client, line):
     answer = client.get(f"{line['links']['self']}/sweep.csv")
     assert answer.status_code == 409

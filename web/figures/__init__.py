@@ -9,13 +9,14 @@ from typing import Any
 from markupsafe import Markup
 
 from web.display import number
+from web.figures.branch import branch_plot
 from web.figures.plot import Plot, Trace
 from web.figures.plots import plots
 from web.figures.spec import data_block, spec
 from web.figures.svg import svg
 from web.figures.sweep import sweep_plots
 
-__all__ = ["Figure", "Plot", "Trace", "drawn", "figures", "plots", "spec", "svg", "sweep_figures"]
+__all__ = ["Figure", "Plot", "Trace", "branch_figure", "drawn", "figures", "plots", "spec", "svg", "sweep_figures"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -39,6 +40,12 @@ def figures(result: Mapping[str, Any]) -> tuple[Figure, ...]:
 def sweep_figures(result: Mapping[str, Any]) -> tuple[Figure, ...]:
     """The figures of the sweep of a result document."""
     return tuple(drawn(plot) for plot in sweep_plots(result))
+
+
+def branch_figure(result: Mapping[str, Any]) -> Figure | None:
+    """The figure of the continuation of a result document."""
+    plot = branch_plot(result)
+    return None if plot is None else drawn(plot)
 
 
 def drawn(plot: Plot) -> Figure:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -17,6 +18,7 @@ class Trace:
     """One line: `places` and `values` of the same length; NaN lifts the pen.  `number` picks colour and dash.
 
     `marked` puts a dot on each value, `joined` draws the line between them; `errors` are half lengths of error bars.
+    `band` is how far the line may be off on either side (of the same length), or None.
     """
 
     label: str
@@ -26,10 +28,16 @@ class Trace:
     marked: bool = False
     joined: bool = True
     errors: Array = field(default_factory=lambda: NOTHING)
+    band: Array | None = None
 
     def reach(self) -> tuple[Array, ...]:
         """The values, and the ends of their error bars."""
         return (self.values - self.errors, self.values + self.errors) if len(self.errors) else (self.values,)
+
+    def edges(self, low: float, high: float) -> tuple[Array, Array]:
+        """Lower and upper edge of the band within a range of values."""
+        width = np.zeros_like(self.values) if self.band is None else self.band
+        return np.clip(self.values - width, low, high), np.clip(self.values + width, low, high)
 
     @property
     def line(self) -> Line:
@@ -69,8 +77,17 @@ class Plot:
         """Least and greatest place, least and greatest value over all lines; never of width zero."""
         places = np.concatenate([trace.places for trace in self.traces])
         values = np.concatenate([part for trace in self.traces for part in trace.reach()])
-        low, high = _widened(values)
+        low, high = _widened(np.concatenate([values, *_bands(self.traces, values)]))
         return (*_widened(places), 0.0 if self.from_zero and not self.logarithmic else low, high)
+
+
+def _bands(traces: Sequence[Trace], values: Array) -> Iterator[Array]:
+    """The edges of all bands, as far as they lie within half the extent of the lines: where a curve is vertical a band
+    has no end."""
+    low, high = _widened(values)
+    for trace in traces:
+        if trace.band is not None:
+            yield from trace.edges(low - (high - low) / 2, high + (high - low) / 2)
 
 
 def _widened(numbers: Array) -> tuple[float, float]:

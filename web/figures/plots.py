@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import replace
 from typing import Any
 
@@ -18,7 +18,7 @@ from web.figures.plot import Plot, Trace
 from web.figures.series import jumps, series
 from web.figures.tabulated import tabulated
 from web.palette import LINES
-from web.trajectory import Trajectory, read_costates, read_trajectory
+from web.trajectory import Trajectory, band, read_changes, read_costates, read_trajectory
 
 LENGTHS = frozenset(("m", "mm", "cm", "km", "um", "µm", "μm", "nm", "dm", "in", "ft", "inch", "foot", "yd", "mi"))
 TABLE_ROWS = 9
@@ -34,7 +34,7 @@ def plots(result: Mapping[str, Any]) -> tuple[Plot, ...]:
     made: list[Plot] = []
     if trajectory is not None:
         made += _path(trajectory)
-        made += _functions(trajectory)
+        made += _functions(trajectory, read_changes(result))
         made += _derivatives(trajectory)
         costates = read_costates(result)
         if costates is not None:
@@ -49,8 +49,18 @@ def plots(result: Mapping[str, Any]) -> tuple[Plot, ...]:
     return tuple(made)
 
 
-def _functions(trajectory: Trajectory) -> Iterable[Plot]:
-    return _grouped(trajectory, trajectory.names, 0, "curve", "Curve")
+def _functions(trajectory: Trajectory, changes: Sequence[Trajectory]) -> Iterable[Plot]:
+    for plot in _grouped(trajectory, trajectory.names, 0, "curve", "Curve"):
+        yield _with_bands(plot, changes)
+
+
+def _with_bands(plot: Plot, changes: Sequence[Trajectory]) -> Plot:
+    """The plot with what the tolerances of the constants leave open shaded beside each line."""
+    traces = tuple(replace(trace, band=band(changes, trace.label, 0, trace.places)) for trace in plot.traces)
+    if all(trace.band is None for trace in traces):
+        return plot
+    told = f"{plot.finding} Shaded: one standard deviation from the tolerances of the constants."
+    return replace(plot, traces=traces, finding=told)
 
 
 def _derivatives(trajectory: Trajectory) -> Iterable[Plot]:

@@ -24,7 +24,9 @@ DIGITS = 7
 def spec(plot: Plot) -> dict[str, Any]:
     """`data` and `layout`; every number is finite or None, which lifts the pen."""
     several = len(plot.traces) > 1
-    data = [
+    left, right, low, high = plot.extent()
+    data = [_shaded(trace, low, high) for trace in plot.traces if trace.band is not None]
+    data += [
         {
             "type": "scatter",
             "mode": "+".join(["lines"] * trace.joined + ["markers"] * trace.marked),
@@ -38,7 +40,6 @@ def spec(plot: Plot) -> dict[str, Any]:
         }
         for trace in plot.traces
     ]
-    left, right, low, high = plot.extent()
     across, up = _axis(plot.across, left, right), _axis(plot.up, low, high)
     if plot.logarithmic:
         up |= _powers(plot)
@@ -64,6 +65,25 @@ def _errors(trace: Trace) -> dict[str, Any]:
         bars = {"type": "data", "array": _numbers(trace.errors), "color": trace.colour, "thickness": 1.2, "width": 3}
         found["error_y"] = bars
     return found
+
+
+def _shaded(trace: Trace, low: float, high: float) -> dict[str, Any]:
+    """The band of a line as a filled area."""
+    lower, upper = trace.edges(low, high)
+    there = np.isfinite(lower) & np.isfinite(upper)
+    return {
+        "type": "scatter",
+        "mode": "lines",
+        "name": f"{trace.label}, one sigma",
+        "x": _numbers(np.concatenate([trace.places[there], trace.places[there][::-1]])),
+        "y": _numbers(np.concatenate([upper[there], lower[there][::-1]])),
+        "fill": "toself",
+        "fillcolor": trace.colour,
+        "line": {"color": trace.colour, "width": 0},
+        "opacity": 0.2,
+        "hoverinfo": "skip",
+        "showlegend": False,
+    }
 
 
 def data_block(plot: Plot) -> str:

@@ -34,6 +34,7 @@ def svg(plot: Plot) -> str:
     parts = [
         f'<svg class="plot-still" viewBox="0 0 {WIDTH} {HEIGHT}" aria-hidden="true" focusable="false">',
         *_axes(plot, (left, right, low, high), across, up, top),
+        *(_band(trace, (low, high), across, up) for trace in plot.traces if trace.band is not None),
         *(_line(trace, across, up, plot.logarithmic) for trace in plot.traces),
         *legend,
         "</svg>",
@@ -127,6 +128,16 @@ def _bars(trace: Trace, across: Scale, up: Scale) -> str:
     rows = zip(trace.places.tolist(), trace.values.tolist(), trace.errors.tolist(), strict=True)
     steps = [f"M{across(x):.1f} {up(y - e):.1f}V{up(y + e):.1f}" for x, y, e in rows if math.isfinite(y + e)]
     return f'<path class="plot-bar {trace.colour[2:]}" d="{"".join(steps)}"/>'
+
+
+def _band(trace: Trace, ranges: tuple[float, float], across: Scale, up: Scale) -> str:
+    """The band as one area: along its upper edge and back along the lower one."""
+    lower, upper = trace.edges(*ranges)
+    there = np.flatnonzero(np.isfinite(lower) & np.isfinite(upper))
+    there = there[:: math.ceil(len(there) / MOST_POINTS) or 1] if len(there) else there
+    way = [(trace.places[k], upper[k]) for k in there] + [(trace.places[k], lower[k]) for k in there[::-1]]
+    points = " ".join(f"{across(x):.1f},{up(y):.1f}" for x, y in way)
+    return f'<polygon class="plot-band {trace.colour[2:]}" points="{points}"/>'
 
 
 def _thinned(places: Array, values: Array) -> tuple[Array, Array]:

@@ -252,6 +252,17 @@ SECTIONS = (
         folded=True,
     ),
     Section(
+        "continuation",
+        Shape.RECORD,
+        "Continuation",
+        "A constant in which the solution is followed from its own value towards another one, and back behind a fold.",
+        (
+            Column("constant", "constant", "Constant", example="d", width="narrow"),
+            Column("to", "to", "To", Kind.VALUE, example="120", width="narrow"),
+        ),
+        folded=True,
+    ),
+    Section(
         "solve",
         Shape.RECORD,
         "How far to go",
@@ -269,7 +280,7 @@ SECTIONS = (
 
 ORDER = (
     "format", "title", "notes", "independent", "constants", "parameters", "unknowns", "tables", "where", "dynamics",
-    "functional", "endpoints", "constraints", "arcs", "observations", "guess", "sweep", "solve",
+    "functional", "endpoints", "constraints", "arcs", "observations", "guess", "sweep", "continuation", "solve",
 )  # fmt: skip
 """The order of the members in a document that the form writes."""
 

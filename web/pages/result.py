@@ -13,7 +13,7 @@ from markupsafe import Markup
 from web import display, links, snippets
 from web.caution import CAUTION_IN_FULL
 from web.extremes import extremes
-from web.figures import Figure, figures
+from web.figures import Figure, branch_figure, figures
 from web.pages.evidence import (
     Check,
     Diagnosis,
@@ -81,6 +81,7 @@ class ResultPage(Page):
     slopes: Rows = told("Constant, slope with unit, tolerance, what that moves the value by, in words.")
     prices: Rows = told("Condition, price with unit, what raising the limit does.")
     reach: Rows = told("Limit report: quantity, lowest, where, highest, where, largest absolute value.")
+    branch: Figure | None = told("The branch of solutions that was followed in a constant; None where none was.")
     sweep: Sweep | None = told("The same problem for many values of a constant; None where none is swept.")
     reading: Reading | None = told("How the problem was understood.")
     relations: tuple[Markup, ...] = told("The conditions as MathML.")
@@ -107,7 +108,7 @@ def result_page(
     seek = str((problem.get("functional") or {"seek": "minimum"}).get("seek") or "")
     drawn = figures(result)
     run_id = str(result.get("id") or "")
-    sweep = sweep_of(result, run_id)
+    sweep, branch = sweep_of(result, run_id), branch_figure(result)
     permalink = base_url.rstrip("/") + links.run(run_id)
     document = json.dumps(problem, ensure_ascii=False, indent=2)
     has_value = result.get("value") is not None
@@ -131,9 +132,9 @@ def result_page(
         extremal_figures=tuple(figure for figure in drawn if figure.key.startswith(EXTREMAL_FIGURES)),
         table_figures=tuple(figure for figure in drawn if figure.key.startswith(TABLE_FIGURES)),
         further_figures=tuple(figure for figure in drawn if not figure.key.startswith(PLACED)),
-        plotly=links.static(SCRIPT) if drawn or sweep else "",
+        plotly=links.static(SCRIPT) if drawn or sweep or branch else "",
         plotly_sheet=GLOBAL_SHEET,
-        plotly_placeholders=placeholder_ids() if drawn or sweep else (),
+        plotly_placeholders=placeholder_ids() if drawn or sweep or branch else (),
         checks=tuple(check_of(check, result) for check in checks),
         checks_tally=tally(checks),
         curve_error=display.number((result.get("curve") or {}).get("error"), 2) if result.get("curve") else "",
@@ -142,6 +143,7 @@ def result_page(
         slopes=slopes_of(result),
         prices=prices_of(result),
         reach=tuple(reach_of(line, result) for line in extremes(result)),
+        branch=branch,
         sweep=sweep,
         reading=reading_view(result["reading"]) if result.get("reading") else None,
         relations=tuple(understood(result["reading"]).values()) if result.get("reading") else (),

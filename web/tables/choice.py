@@ -18,10 +18,12 @@ class Choice:
     step: str = ""
     columns: str = ""
     derivatives: str = "0"
+    sigma: str = ""
 
     def query(self) -> dict[str, str]:
         """What is not the default, for the addresses of the files."""
-        fields = {"rows": self.rows, "step": self.step, "columns": self.columns, "derivatives": self.derivatives}
+        fields = {"rows": self.rows, "step": self.step, "columns": self.columns, "derivatives": self.derivatives,
+                  "sigma": self.sigma}  # fmt: skip
         return {name: text for name, text in fields.items() if text and (name, text) != ("derivatives", "0")}
 
     def table(self, result: Mapping[str, Any]) -> Table:
@@ -32,6 +34,7 @@ class Choice:
             step=None if not self.step else _number(self.step, "step"),
             columns=[name for part in self.columns.split(",") if (name := part.strip())] or None,
             derivatives=_whole(self.derivatives or "0", "derivatives"),
+            sigma=bool(self.sigma),
         )
 
 
@@ -42,6 +45,7 @@ def read_choice(query: Mapping[str, str]) -> Choice:
         step=query.get("step", "").strip(),
         columns=query.get("columns", "").strip(),
         derivatives=query.get("derivatives", "").strip() or "0",
+        sigma="true" if query.get("sigma", "").strip() in ("true", "1", "on") else "",
     )
 
 

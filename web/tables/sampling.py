@@ -13,7 +13,7 @@ from web.caution import CAUTION
 from web.tables.columns import Column, described, wanted_columns
 from web.tables.error import TableError
 from web.tables.places import row_places
-from web.trajectory import read_trajectory
+from web.trajectory import band, read_changes, read_trajectory
 from web.unit_text import bracketed
 
 MOST_CELLS = 1_000_000
@@ -49,6 +49,7 @@ def table(
     step: float | None = None,
     columns: Sequence[str] | None = None,
     derivatives: int = 0,
+    sigma: bool = False,
 ) -> Table:
     """The curve of a result document as a table, in the user's units.
 
@@ -56,7 +57,8 @@ def table(
     polynomials), or `rows` places evenly spaced, or every `step` from the start; the last row is exactly the end.
     `columns` are names with primes (the independent variable is always first); by default every unknown with its
     derivatives up to `derivatives`.  At a break where a control jumps the row shows the value just before it; at a
-    junction node rows show both arcs, evenly spaced ones the arc that ends there.
+    junction node rows show both arcs, evenly spaced ones the arc that ends there.  With `sigma` every column is
+    followed by one standard deviation of it from the tolerances of the constants, where that is known.
 
     Raises `TableError`.
     """
@@ -76,13 +78,37 @@ def table(
         (arc, np.column_stack([some, *(arc.evaluate(name, order, some) for name, order in chosen)]))
         for arc, some in places
     ]
+    columns_ = described(trajectory, chosen, numbers, (result.get("problem") or {}).get("unknowns") or {})
+    whole = np.concatenate([some for _, some in numbers])
+    if sigma:
+        columns_, whole = _with_sigma(result, chosen, columns_, whole)
     return Table(
         title=str((result.get("problem") or {}).get("title") or "Curve"),
-        columns=described(trajectory, chosen, numbers, (result.get("problem") or {}).get("unknowns") or {}),
-        rows=np.concatenate([some for _, some in numbers]),
+        columns=columns_,
+        rows=whole,
         arcs=tuple(arc.name for arc, some in places for _ in some) if len(trajectory.arcs) > 1 else (),
         record=record_of(result),
     )
+
+
+def _with_sigma(
+    result: Mapping[str, Any], chosen: Sequence[tuple[str, int]], columns: tuple[Column, ...], rows: Array
+) -> tuple[tuple[Column, ...], Array]:
+    """Columns and rows with the standard deviations; raises TableError where there are none."""
+    changes = read_changes(result)
+    if not changes:
+        message = "It is not known what the tolerances of the constants do to the curve."
+        raise TableError(message, "Give a constant a tolerance: 0.80 m +/- 0.01 m.", "no-tolerances")
+    more, numbers = [columns[0]], [rows[:, 0]]
+    for (name, order), column, values in zip(chosen, columns[1:], rows.T[1:], strict=True):
+        more.append(column)
+        numbers.append(values)
+        found = band(changes, name, order, rows[:, 0])
+        if found is not None:
+            meaning = f"one standard deviation of {column.name} from the tolerances of the constants"
+            more.append(Column(f"{column.name} sigma", column.unit, meaning))
+            numbers.append(found)
+    return tuple(more), np.column_stack(numbers)
 
 
 def record_of(result: Mapping[str, Any]) -> tuple[tuple[str, str], ...]:

@@ -13,6 +13,9 @@ from solvers.formula.nodes import Name, Number
 from solvers.problem import Condition, Constant, Parameter, Place, Problem, Sweep, Unknown
 from solvers.solution import (
     ArcCurve,
+    Branch,
+    BranchPoint,
+    Change,
     Check,
     Diagnosis,
     Extremal,
@@ -127,7 +130,9 @@ def test_a_slope_is_value_per_constant_and_the_band_is_a_value():
     assert (first["constant"], first["unit"]) == ("k", "mJ/mm")
     assert (first["slope"], first["tolerance"], first["contribution"]) == pytest.approx((4.0, 3.0, 12.0))
     assert second == {"constant": "n", "slope": None, "unit": "mJ", "tolerance": None, "contribution": None}
-    assert result["band"] == {"value": pytest.approx(12.0)}
+    assert result["band"] == {"value": pytest.approx(12.0), "curve": []}
+    (change,) = _archived(replace(SOLVED, changes=(Change("k", CURVE),)))["band"]["curve"]
+    assert change == {"constant": "k", "arcs": result["curve"]["arcs"]}
     assert _archived(replace(SOLVED, slopes=()))["band"] is None
 
 
@@ -147,6 +152,15 @@ def test_a_sweep_is_in_the_units_of_its_constants_and_of_the_value():
     assert curve["point"] == 0
     assert curve["arcs"] == _archived()["curve"]["arcs"]
     assert _archived()["sweep"] is None
+
+
+def test_a_continuation_is_in_the_units_of_its_constant_and_of_the_value():
+    branch = Branch("k", (BranchPoint(1.0, 0.25, 0),), (BranchPoint(1.5, 0.5, 0),), "Stopped.", 1e-8)
+    found = _archived(replace(SOLVED, branch=branch))["continuation"]
+    assert (found["constant"], found["unit"], found["end"]) == ("k", "mm", "Stopped.")
+    assert found["points"] == [{"at": 1000.0, "value": 250.0, "leg": 0}]
+    assert found["folds"] == [{"at": 1500.0, "value": 500.0, "leg": 0}]
+    assert _archived()["continuation"] is None
 
 
 def test_costates_are_value_per_state_and_densities_are_that_per_time():

@@ -31,7 +31,7 @@ PARABOLA = fitted(x=lambda s: 3 * s**2, x_=lambda s: 6 * s, y=lambda s: s**2, y_
 
 
 def test_the_curve_as_functions_of_x_with_slopes():
-    shown, costates = as_graph(GAUGED, PARABOLA, fitted(y=lambda s: s), 0.5)
+    shown, costates, _ = as_graph(GAUGED, PARABOLA, fitted(y=lambda s: s), 0.5)
     x = np.linspace(0.1, 3, 20)
     np.testing.assert_allclose(shown.evaluate("y", x), x / 3, atol=1e-10)
     np.testing.assert_allclose(shown.evaluate("y'", x), 1 / 3, atol=1e-8)

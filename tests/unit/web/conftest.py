@@ -105,7 +105,8 @@ def hose_document() -> dict[str, Any]:
             {"constant": "w", "slope": 0.0, "unit": "m^2", "tolerance": None, "contribution": None},
         ],
         "sweep": None,
-        "band": {"value": 0.02 * multiplier},
+        "continuation": None,
+        "band": {"value": 0.02 * multiplier, "curve": []},
         "diagnosis": None,
         "notes": ["The length condition is an integral condition; its multiplier is found with the curve."],
         "reading": {

@@ -21,7 +21,11 @@ export const CONFIG = {
 
 /** The data of a specification with real colours; `colour` turns `--line-1` into what it stands for. */
 export function painted(data, colour) {
-  return data.map((trace) => ({ ...trace, line: { ...trace.line, color: colour(trace.line.color) } }));
+  return data.map((trace) => ({
+    ...trace,
+    line: { ...trace.line, color: colour(trace.line.color) },
+    ...(trace.fillcolor ? { fillcolor: colour(trace.fillcolor) } : {}),
+  }));
 }
 
 /** The layout of a specification on the paper that the reader has chosen. */

@@ -1,0 +1,231 @@
+"""A branch of solutions followed in one constant, around folds: where two solutions meet and vanish.
+
+The optimality system on the mesh, with what binds as equalities, is solved together with the constant as one more
+unknown and the length along the branch as one more equation, so that nothing is singular at a fold.  Along the branch
+go Newton's steps from a predictor along the tangent; a fold lies where the constant turns back.
+
+Reference: Keller (1977), Numerical solution of bifurcation and nonlinear eigenvalue problems, in: Applications of
+Bifurcation Theory (pseudo-arclength; from memory).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass, replace
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from solvers import refinement
+from solvers.deadline import Deadline
+from solvers.functions import with_constants
+from solvers.ipopt import Minimum, Outcome
+from solvers.layout import layout
+from solvers.newton import within_limits
+from solvers.pursuit import make_program
+from solvers.response import Response, SingularError
+from solvers.sensitivity import limit_shifts
+from solvers.solution import Branch, BranchPoint
+from solvers.trajectory import Trajectory, carry, trajectory
+from solvers.transcription import Program, restated
+
+Array = NDArray[np.float64]
+Indices = NDArray[np.int64]
+
+POINTS = 150
+"""Most points of a branch."""
+FIRST_STEP = 0.05
+SHORTEST, LONGEST = 1e-5, 0.1
+"""Lengths of a step: root mean square of the scaled variables' change, with the constant's relative change."""
+STEPS = 8
+CLOSE = 1e-10
+"""Newton's residual, scaled, at which a point counts as solved."""
+QUICK = 3
+"""Newton's steps up to which the next step along the branch may be longer."""
+
+
+@dataclass(frozen=True, slots=True)
+class _At:
+    """A point with its tangent: of the free variables and the active rows (scaled), then of the constant."""
+
+    path: Trajectory
+    at: float
+    tangent: Array
+
+
+def follow(
+    path: Trajectory, constant: str, to: float, deadline: Deadline, stop: Callable[[BranchPoint], bool]
+) -> Branch:
+    """The branch through a solved path, from the constant's own value towards `to` (SI) and back behind a fold.
+
+    `stop` hears of every point and ends the branch where it says so.  The path's mesh is made finer first: the curve
+    changes along the branch.
+    """
+    return _Follower(path, constant, to, deadline, stop).branch()
+
+
+class _Follower:
+    def __init__(
+        self, path: Trajectory, constant: str, to: float, deadline: Deadline, stop: Callable[[BranchPoint], bool]
+    ) -> None:
+        self.names = [c.name for c in path.program.compiled.lowered.problem.constants]
+        self.constant, self.index, self.to = constant, self.names.index(constant), to
+        self.deadline, self.stop = deadline, stop
+        self.began = path.program.compiled.constants[self.index]
+        self.size = max(abs(self.began), abs(to), 1e-300)
+        self.path = _finer(path)
+        self.points: list[BranchPoint] = []
+        self.folds: list[BranchPoint] = []
+        self.error = 0.0
+
+    def branch(self) -> Branch:
+        """Follow it."""
+        end = self._followed()
+        return Branch(self.constant, tuple(self.points), tuple(self.folds), end, self.error)
+
+    def _followed(self) -> str:
+        try:
+            first = self._corrected(self.path, self.began, None, 0.0)
+        except SingularError:
+            first = None
+        if first is None:
+            return "The branch could not be begun: the solution is singular already, or a limit ceases to bind."
+        here, step, way = first[0], FIRST_STEP, np.sign(self.to - self.began)
+        if here.tangent[-1] * way < 0:
+            here = replace(here, tangent=-here.tangent)
+        if self._add(here):
+            return "Stopped."
+        while len(self.points) < POINTS:
+            if self.deadline.over:
+                return "The time limit was reached."
+            found = self._next(here, step)
+            if found is None:
+                if step <= SHORTEST:
+                    return "No further point was found: a limit begins to bind here, or the curve degenerates."
+                step /= 2
+                continue
+            there, count = found
+            if there.tangent[-1] * here.tangent[-1] < 0:
+                self._fold(here, there, step)
+            if self._beyond(there):
+                return "The branch reaches the value asked for." if self._past(there) else "The branch has come back."
+            here = there
+            if self._add(here):
+                return "Stopped."
+            step = min(step * (1.5 if count <= QUICK else 1.0 if count <= QUICK + 2 else 0.6), LONGEST)
+        return f"The branch has {POINTS} points; it may go on."
+
+    def _past(self, point: _At) -> bool:
+        return bool((point.at - self.to) * np.sign(self.to - self.began) >= 0)
+
+    def _beyond(self, point: _At) -> bool:
+        behind = (point.at - self.began) * np.sign(self.to - self.began) < 0
+        return self._past(point) or bool(behind and self.folds)
+
+    def _add(self, point: _At) -> bool:
+        """Keep a point; whether to stop there."""
+        self.error = max(self.error, refinement.estimate(point.path).worst)
+        self.points.append(self._told(point))
+        return self.stop(self.points[-1])
+
+    def _told(self, point: _At) -> BranchPoint:
+        return BranchPoint(point.at, point.path.value, len(self.folds))
+
+    def _fold(self, before: _At, after: _At, step: float) -> None:
+        """Where between two points the constant turns: false position on its share of the tangent."""
+        low, high = (0.0, before.tangent[-1]), (step, after.tangent[-1])
+        best = min(before, after, key=lambda point: abs(point.tangent[-1]))
+        for _ in range(STEPS):
+            length = low[0] - low[1] * (high[0] - low[0]) / (high[1] - low[1])
+            found = self._next(before, length)
+            if found is None:
+                break
+            share = found[0].tangent[-1]
+            best = found[0]
+            if abs(share) < 1e-7:
+                break
+            low, high = ((length, share), high) if share * low[1] > 0 else (low, (length, share))
+        self.folds.append(self._told(best))
+
+    def _next(self, here: _At, step: float) -> tuple[_At, int] | None:
+        """The point at a distance along the branch, with the number of Newton's steps; None where there is none."""
+        try:
+            return self._corrected(here.path, here.at, here.tangent, step)
+        except SingularError:
+            return None
+
+    def _corrected(self, path: Trajectory, at: float, tangent: Array | None, step: float) -> tuple[_At, int] | None:
+        """Newton's method from a predictor; without a tangent at a fixed value of the constant."""
+        free, active = _unknowns(path)
+        begun = self._vector(path, free, active, at)
+        vector = begun if tangent is None else begun + step * tangent
+        weights = np.concatenate([np.full(len(free), 1 / max(len(free), 1)), np.zeros(len(active)), [1.0]])
+        row = np.append(np.zeros(len(vector) - 1), 1.0) if tangent is None else weights * tangent
+        for count in range(STEPS + 1):
+            moved = self._moved(path, free, active, vector)
+            system = Response(moved)
+            if len(system.free) != len(free) or len(system.active) != len(active):
+                return None
+            residual = np.append(system.residual(), row @ (vector - begun) - (0.0 if tangent is None else step))
+            if not np.isfinite(residual).all():
+                return None
+            push = system.push(self.index, limit_shifts(moved)[self.index]) * self.size
+            solve = _bordered(system.matrix, push, row)
+            if np.abs(residual).max() <= CLOSE:
+                unit = solve(np.append(np.zeros(len(vector) - 1), 1.0))
+                unit /= np.sqrt(weights @ unit**2) * (1.0 if row @ unit > 0 else -1.0)
+                inside = within_limits(moved.program, moved.z / moved.program.scale)
+                return (_At(moved, float(vector[-1] * self.size), unit), count) if inside else None
+            vector = vector - solve(residual)
+        return None
+
+    def _vector(self, path: Trajectory, free: Indices, active: Indices, at: float) -> Array:
+        program = path.program
+        rows = path.row_multipliers * program.row_scale / abs(program.value_scale)
+        return np.concatenate([(path.z / program.scale)[free], rows[active], [at / self.size]])
+
+    def _moved(self, path: Trajectory, free: Indices, active: Indices, vector: Array) -> Trajectory:
+        """The path with these variables and multipliers, for this value of the constant."""
+        at = float(vector[-1] * self.size)
+        program = restated(path.program, with_constants(path.program.compiled, {self.constant: at}))
+        z, rows = path.z / program.scale, np.zeros(program.rows.count)
+        fixed = program.lower == program.upper
+        z[fixed] = program.lower[fixed]
+        z[free], rows[active] = vector[: len(free)], vector[len(free) : -1]
+        return _at_variables(program, z, rows)
+
+
+def _unknowns(path: Trajectory) -> tuple[Indices, Indices]:
+    """The variables that are free and the rows that are equalities; inequalities must not bind."""
+    system = Response(path)
+    return system.free, system.active
+
+
+def _bordered(matrix: Any, column: Array, row: Array) -> Callable[[Array], Array]:
+    """Solves with the matrix bordered by a column and a row: not singular at a fold.  Raises `SingularError`."""
+    from scipy.sparse import bmat
+    from scipy.sparse.linalg import splu
+
+    whole = bmat([[matrix, column[:, None]], [row[None, :-1], [[row[-1]]]]], format="csc")
+    try:
+        return splu(whole).solve  # type: ignore[no-any-return]
+    except RuntimeError as error:
+        raise SingularError from error
+
+
+def _at_variables(program: Program, z: Array, rows: Array) -> Trajectory:
+    """The trajectory of scaled variables and multipliers."""
+    value = program.numbers.value(z)
+    return trajectory(program, Minimum(Outcome.SOLVED, z, value, np.zeros(len(z)), rows, 0, 0.0, 0.0, "Newton"))
+
+
+def _finer(path: Trajectory) -> Trajectory:
+    """The path on a mesh of higher degrees, as a start; limits that do not hold it have no multipliers."""
+    compiled, mesh = path.program.compiled, refinement.finer(refinement.finer(path.program.mesh))
+    where = layout(compiled, mesh)
+    carried = carry(path, mesh, where)
+    program = make_program(compiled, mesh, where, carried.z, path.program.scales)
+    start = carried.onto(program)
+    rows = np.zeros(program.rows.count) if start.multipliers is None else start.multipliers
+    return _at_variables(program, start.z, np.where(program.row_lower == program.row_upper, rows, 0.0))

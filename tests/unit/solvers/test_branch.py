@@ -1,0 +1,86 @@
+"""A branch followed around its folds, against published values and closed forms."""
+
+from dataclasses import replace
+
+import numpy as np
+import pytest
+
+from solvers.problem import Continuation
+from solvers.solve import solve
+from tests.unit.solvers.problems import shape, stated
+
+
+def film(**members):
+    """The film between hoops of the radius 1 at the distance h: y = a cosh((x - h/2)/a)."""
+    given = {
+        "independent": {"name": "x", "from": 0, "to": "h"},
+        "constants": {"h": 1.0},
+        "unknowns": {"y": {"within": [0, None]}},
+        "functional": {"integrand": "y*sqrt(1 + y'^2)"},
+        "endpoints": ["y(0) = 1", "y(h) = 1"],
+    }
+    return shape(**given | members)
+
+
+def area(a):
+    """h and the value (area over 2 pi) of the catenary y = a cosh((x - h/2)/a) with y(0) = 1."""
+    half = a * np.arccosh(1 / a)
+    return 2 * half, a * (half + a * np.sinh(2 * half / a) / 2)
+
+
+def followed(problem, constant, to):
+    return solve(replace(problem, continuation=Continuation(constant, to))).branch
+
+
+def test_the_film_between_equal_hoops_lets_go_at_the_published_distance():
+    # Greatest distance over radius 1.325487 (from Bliss 1925, chapter IV, and later books; from memory).
+    branch = followed(film(), "h", 2.0)
+    (fold,) = branch.folds
+    assert fold.at == pytest.approx(1.325487, abs=5e-6)
+    assert branch.end == "The branch has come back."
+    assert [point.leg for point in branch.points] == sorted(point.leg for point in branch.points)
+
+
+def test_both_legs_are_the_two_catenaries():
+    branch = followed(film(), "h", 2.0)
+    a = np.linspace(0.05, 0.99999, 200_001)
+    distances, values = area(a)
+    fold = int(np.argmax(distances))
+    for point in branch.points:
+        side = slice(fold, None) if point.leg == 0 else slice(None, fold + 1)
+        order = np.argsort(distances[side])
+        expected = np.interp(point.at, distances[side][order], values[side][order])
+        assert point.value == pytest.approx(expected, rel=1e-5)
+
+
+def test_unequal_hoops_let_go_where_the_limit_problem_says():
+    # The sleeve of Hollin Bench, radii 60 and 80 mm: two conditions on y = a cosh((x - s)/a), dh/da = 0, solved here.
+    problem = film(constants={"h": 50.0}, endpoints=["y(0) = 60", "y(h) = 80"])
+    a = np.linspace(1.0, 59.999, 2_000_001)
+    greatest = (a * (np.arccosh(60 / a) + np.arccosh(80 / a))).max()
+    branch = followed(problem, "h", 120.0)
+    assert branch.folds[0].at == pytest.approx(greatest, rel=1e-6)
+
+
+def test_without_a_fold_the_branch_reaches_the_value_asked_for():
+    # The chain of length 2.4 between (-b, 0) and (b, 0) moves without a fold; x' = u to D costs D^2.
+    problem = stated(constants={"D": 1.0}, endpoints=["x(0) = 0", "x(1) = D"])
+    branch = followed(problem, "D", -2.0)
+    assert branch.folds == ()
+    assert branch.end == "The branch reaches the value asked for."
+    assert [point.value for point in branch.points] == pytest.approx([point.at**2 for point in branch.points])
+    assert branch.points[0].at == 1.0
+
+
+def test_where_a_limit_begins_to_bind_the_branch_ends_and_says_so():
+    problem = stated(constants={"D": 1.0}, endpoints=["x(0) = 0", "x(1) = D"], constraints=["u <= 2"])
+    branch = followed(problem, "D", 3.0)
+    assert 1.9 < branch.points[-1].at <= 2.0
+    assert branch.end.startswith("No further point was found")
+
+
+def test_a_stop_ends_the_branch():
+    problem = replace(film(), continuation=Continuation("h", 2.0))
+    branch = solve(problem, lambda progress: progress.point is not None and progress.point[0] == 3).branch
+    assert len(branch.points) == 3
+    assert branch.end == "Stopped."
