@@ -75,8 +75,10 @@ def _limits(path: Trajectory, multipliers: Array) -> Iterator[Price]:
         else:
             size = program.row_scale[program.rows.pointwise + k]
             yield from _sides((condition.label,) * 2, (condition.pointer,) * 2, rows[:, k], worth / size)
-    fixed = program.lower == program.upper
-    free = np.where(fixed, 0.0, multipliers)
+    held = _held(path)
+    free = np.where(program.lower == program.upper, 0.0, multipliers)
+    above = np.where(held > 0, multipliers, np.maximum(free, 0.0))
+    below = np.where(held < 0, multipliers, np.minimum(free, 0.0))
     bounded: dict[tuple[str, int], list[tuple[str, str, float, float]]] = {}
     for unknown in problem.unknowns:
         pointer = f"/unknowns/{unknown.name}/within"
@@ -88,14 +90,40 @@ def _limits(path: Trajectory, multipliers: Array) -> Iterator[Price]:
     nodes = _own_nodes(path)
     for quantities, indices in ((compiled.lowered.states, where.inner), (compiled.lowered.controls, where.controls)):
         for column, quantity in enumerate(quantities):
-            own = free[indices[:, column]]
+            own = indices[:, column]
             if indices is where.inner:
-                own = np.concatenate([own, free[where.nodes[nodes, column]]])
+                own = np.concatenate([own, where.nodes[nodes, column]])
             if bounded.get(quantity):
-                yield from _attributed(bounded[quantity], own, worth / program.scale[indices[0, column]])
+                least = worth / program.scale[indices[0, column]]
+                yield from _attributed(bounded[quantity], float(above[own].sum()), float(below[own].sum()), least)
     for parameter, index in zip(problem.parameters, where.parameters, strict=True):
         limit = (f"{parameter.name} within", f"/parameters/{parameter.name}/within", parameter.lower, parameter.upper)
-        yield from _attributed([limit], free[[index]], worth / program.scale[index])
+        yield from _attributed([limit], float(above[index]), float(below[index]), worth / program.scale[index])
+
+
+def _held(path: Trajectory) -> NDArray[np.int8]:
+    """For each variable whether an arc or a touch holds it on its upper (1) or lower (-1) limit; else 0.
+
+    What a condition fixes at a place belongs to that condition.
+    """
+    compiled, where = path.program.compiled, path.program.layout
+    lowered, held = compiled.lowered, np.zeros(where.size, np.int8)
+    labels = [place.label for place in lowered.problem.places]
+    for hold in lowered.problem.held:
+        quantity, on = (hold.name, hold.order), where.stretch == hold.stretch
+        if quantity in lowered.controls:
+            held[where.controls[on, lowered.controls.index(quantity)]] = hold.side
+        else:
+            k = lowered.states.index(quantity)
+            held[where.inner[on, k]] = hold.side
+            held[where.nodes[where.at_place[hold.stretch] : where.at_place[hold.stretch + 1] + 1, k]] = hold.side
+    for touch in lowered.problem.touches:
+        node = where.at_place[labels.index(touch.place)]
+        held[where.nodes[node, lowered.states.index((touch.name, touch.order))]] = touch.side
+    for state, place, condition in compiled.fixed:
+        if condition.equality:
+            held[where.nodes[where.at_place[place], state]] = 0
+    return held
 
 
 def _own_nodes(path: Trajectory) -> NDArray[np.int64]:
@@ -105,19 +133,28 @@ def _own_nodes(path: Trajectory) -> NDArray[np.int64]:
     return np.flatnonzero(~shared)
 
 
-def _attributed(limits: list[tuple[str, str, float, float]], multipliers: Array, least: float) -> Iterator[Price]:
+def _attributed(
+    limits: list[tuple[str, str, float, float]], upper: float, lower: float, least: float
+) -> Iterator[Price]:
     """Prices of the bounds of one quantity: they belong to its least upper and its greatest lower limit."""
     above = min(limits, key=lambda limit: limit[3])
     below = max(limits, key=lambda limit: limit[2])
-    yield from _sides((above[0], below[0]), (above[1], below[1]), multipliers, least)
+    yield from _told((above[0], below[0]), (above[1], below[1]), upper, lower, least)
 
 
 def _sides(labels: tuple[str, str], pointers: tuple[str, str], multipliers: Array, least: float) -> Iterator[Price]:
-    """Prices of an upper and a lower limit, told apart by the sign; those that do not bind are left out.
+    """Prices of an upper and a lower limit, told apart by the sign."""
+    upper, lower = float(multipliers[multipliers > 0].sum()), float(multipliers[multipliers < 0].sum())
+    yield from _told(labels, pointers, upper, lower, least)
+
+
+def _told(
+    labels: tuple[str, str], pointers: tuple[str, str], upper: float, lower: float, least: float
+) -> Iterator[Price]:
+    """Those of both sides that bind.
 
     An interior point method leaves a trace of every multiplier, so only those above `least` count.
     """
-    upper, lower = float(multipliers[multipliers > 0].sum()), float(multipliers[multipliers < 0].sum())
     both = min(upper, -lower) > least
     if upper > least:
         yield Price(f"{labels[0]} (upper)" if both else labels[0], pointers[0], upper)
