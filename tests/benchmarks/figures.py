@@ -1,0 +1,237 @@
+"""How long we take beside what else one could do, in processor time of one process; prints tables.
+
+    python -m tests.benchmarks.figures script|floor|growth|small [IDS]...
+"""
+
+from __future__ import annotations
+
+import os
+import statistics
+import sys
+import time
+from collections.abc import Callable, Iterable, Iterator
+from dataclasses import dataclass
+from math import nan
+from unittest import mock
+
+from service.threads import ONE_THREAD
+
+os.environ.update(ONE_THREAD)
+
+from service import samples  # noqa: E402  the libraries read the environment when they are loaded
+from service.assemble import assemble  # noqa: E402
+from service.spec import read  # noqa: E402
+from solvers import pursuit  # noqa: E402
+from solvers.guess import guesses  # noqa: E402
+from solvers.ipopt import Minimum, Start, minimise  # noqa: E402
+from solvers.layout import layout  # noqa: E402
+from solvers.mesh import uniform  # noqa: E402
+from solvers.scaling import find_row_sizes, find_scales  # noqa: E402
+from solvers.solution import Solution  # noqa: E402
+from solvers.solve import solve  # noqa: E402
+from solvers.transcription import Program, transcribe  # noqa: E402
+from tests.acceptance.catalogue import CATALOGUE, HARD  # noqa: E402
+from tests.benchmarks import scripted  # noqa: E402
+from tests.benchmarks.scripts import SCRIPTS  # noqa: E402
+
+TOLERANCE = 1e-6
+"""Relative, of the value: that of our documents, and that to which the script's meshes agree."""
+BRIEF = 0.4
+"""Seconds below which a timing is repeated."""
+LONGEST = 5.0
+"""Seconds of ours beyond which a problem has no part in the comparison with a bare call."""
+
+
+def text(name: str) -> bytes:
+    """A document of the catalogue, or a sample."""
+    return CATALOGUE[name].document.read_bytes() if name in CATALOGUE else samples.text(name).encode()
+
+
+def ours(name: str) -> Solution:
+    """From the document to the solution with all its checks."""
+    return solve(assemble(read(text(name))))
+
+
+def seconds(work: Callable[[], object]) -> float:
+    """Processor time of one call."""
+    began = time.process_time()
+    work()
+    return time.process_time() - began
+
+
+def warm_up() -> None:
+    """Load what a process loads once."""
+    for name in ("A38b", "A02", "B02"):
+        ours(name)
+
+
+@dataclass(frozen=True)
+class Beside:
+    """Seconds of ours and of the other for one problem, and the relative errors of both values."""
+
+    name: str
+    ours: float
+    other: float
+    our_error: float = nan
+    other_error: float = nan
+    finished: bool = True
+    note: str = ""
+
+    @property
+    def ratio(self) -> float:
+        """Our time over the other's."""
+        return self.ours / self.other
+
+
+def mean_ratio(rows: Iterable[Beside]) -> float:
+    """The geometric mean."""
+    return statistics.geometric_mean(row.ratio for row in rows)
+
+
+def beside_script(name: str) -> Beside:
+    """One problem by turns; the least of three times where these are short, as nothing makes a time too short."""
+    case, script = CATALOGUE[name], SCRIPTS[name]
+    our_laps, laps = [], []
+    for _ in range(3):
+        found: list[scripted.Found] = []
+        solved: list[Solution] = []
+        our_laps.append(seconds(lambda: solved.append(ours(name))))  # noqa: B023  called at once
+        laps.append(seconds(lambda: found.append(scripted.solve(script, TOLERANCE))))  # noqa: B023
+        if laps[-1] > BRIEF:
+            break
+
+    def error(value: float | None) -> float:
+        return nan if value is None else abs(value - case.value) / (abs(case.value) or 1.0)
+
+    value = -found[0].value if case.sort.name == "MAXIMUM" else found[0].value
+    unit = assemble(read(text(name))).value_unit.factor
+    return Beside(name, min(our_laps), min(laps), error(solved[0].value / unit), error(value), found[0].agreed,
+                  f"{found[0].intervals}")  # fmt: skip
+
+
+def last_program(name: str) -> Program:
+    """The program of the mesh that a solution is from."""
+    tried: list[tuple[Program, Minimum]] = []
+
+    def noted(program: Program, start: Start, **others: object) -> Minimum:
+        minimum = minimise(program, start, **others)
+        tried.append((program, minimum))
+        return minimum
+
+    with mock.patch.object(pursuit, "minimise", noted):
+        ours(name)
+    return next(program for program, minimum in reversed(tried) if minimum.outcome in pursuit.SOLVED)
+
+
+def from_first_guess(compiled, mesh) -> tuple[Program, Start]:
+    """A program with the sizes and the start that our first guess gives on a mesh."""
+    where = layout(compiled, mesh)
+    guess = guesses(compiled, mesh, where)[0]
+    scales = find_scales(compiled, where, guess.z)
+    program = transcribe(compiled, mesh, where, scales, find_row_sizes(compiled, where, scales, guess.z))
+    return program, Start(guess.z / program.scale)
+
+
+def above_floor(name: str) -> Beside:
+    """Ours beside one bare call of the minimiser on our last mesh from our first guess."""
+    took = seconds(lambda: ours(name))
+    if took > LONGEST:
+        return Beside(name, took, nan, finished=False, note="too long")
+    last = last_program(name)
+    program, start = from_first_guess(last.compiled, last.mesh)
+    minima: list[Minimum] = []
+    bare = seconds(lambda: minima.append(minimise(program, start, options={"ipopt.max_cpu_time": LONGEST})))
+    if took < BRIEF:
+        took = min(took, seconds(lambda: ours(name)))
+        bare = min(bare, seconds(lambda: minimise(program, start)))
+    return Beside(name, took, bare, finished=minima[0].outcome in pursuit.SOLVED, note=minima[0].outcome.value)
+
+
+@dataclass(frozen=True)
+class Size:
+    """What one iteration costs on one mesh: seconds and bytes."""
+
+    intervals: int
+    unknowns: int
+    iterations: int
+    per_iteration: float
+
+
+ITERATIONS = 8
+"""How many iterations are timed on each mesh."""
+
+
+def growth(name: str = "C16a", counts: tuple[int, ...] = (25, 250, 2500)) -> Iterator[Size]:
+    """Meshes of ten times as many intervals each: the same few iterations on each."""
+    from solvers.functions import compile_problem
+    from solvers.lowering import lower
+
+    compiled = compile_problem(lower(assemble(read(text(name)))))
+    for count in counts:
+        program, start = from_first_guess(compiled, uniform(1, count, 4))
+        laps = []
+        for _ in range(2 if count > 1000 else 5):
+            reached: list[float] = []
+
+            def stop(iterate, reached=reached) -> bool:
+                reached.append(time.process_time())
+                return iterate.number >= ITERATIONS
+
+            minimise(program, start, watch=stop)
+            laps.append((reached[-1] - reached[0]) / (len(reached) - 1))
+        yield Size(count, program.layout.size, len(reached) - 1, min(laps))
+
+
+def _script_table(names: list[str]) -> None:
+    print(f"{'problem':<8} {'ours ms':>8} {'script ms':>10} {'ratio':>6}  {'our error':>9} {'its error':>9}  intervals")
+    rows = []
+    for name in names or SCRIPTS:
+        row = beside_script(name)
+        rows.append(row)
+        print(f"{row.name:<8} {1e3 * row.ours:8.0f} {1e3 * row.other:10.0f} {row.ratio:6.2f}  {row.our_error:9.1e} "
+              f"{row.other_error:9.1e}  {row.note}{'' if row.finished else ' (gave up)'}", flush=True)  # fmt: skip
+    agreed = [row for row in rows if row.finished]
+    print(f"geometric mean {mean_ratio(rows):.2f} of {len(rows)}; {mean_ratio(agreed):.2f} of the {len(agreed)} "
+          f"where the script came to an end; sum {sum(r.ours for r in rows) / sum(r.other for r in rows):.2f}; "
+          f"worst {max(row.ratio for row in rows):.2f}")  # fmt: skip
+
+
+def _floor_table(names: list[str]) -> None:
+    print(f"{'problem':<8} {'ours ms':>8} {'bare ms':>8} {'ratio':>6}  the bare call")
+    rows = []
+    for name in names or [name for name in CATALOGUE if name not in HARD]:
+        try:
+            row = above_floor(name)
+        except StopIteration:
+            print(f"{name:<8} no mesh was solved")
+            continue
+        rows.append(row)
+        print(f"{row.name:<8} {1e3 * row.ours:8.0f} {1e3 * row.other:8.0f} {row.ratio:6.2f}  {row.note}", flush=True)
+    good = [row for row in rows if row.finished]
+    print(f"geometric mean {mean_ratio(good):.2f} of {len(good)}")
+
+
+def _growth_table(names: list[str]) -> None:
+    print("intervals  unknowns  ms per iteration")
+    for size in growth(*names[:1]):
+        print(f"{size.intervals:9}  {size.unknowns:8}  {1e3 * size.per_iteration:.2f}", flush=True)
+
+
+SMALL = ("chute", "hose", "A38b")
+
+
+def small(name: str, rounds: int = 5) -> float:
+    """Seconds of processor time for a small problem in a warm process: the least of some rounds."""
+    return min(seconds(lambda: ours(name)) for _ in range(rounds))
+
+
+def _small_table(names: list[str]) -> None:
+    for name in names or SMALL:
+        print(f"{name:<8} {1e3 * small(name):.0f} ms", flush=True)
+
+
+TABLES = {"script": _script_table, "floor": _floor_table, "growth": _growth_table, "small": _small_table}
+
+if __name__ == "__main__":
+    warm_up()
+    TABLES[sys.argv[1]](sys.argv[2:])
