@@ -29,6 +29,9 @@ LACKING = 1e-5
 TOUCHED = 1e-5
 """Multipliers of limits on states alone, relative to the functional, that make an interval a touched one."""
 
+LARGEST_BATCH = 2_000_000
+"""How many numbers the steps of several intervals may take that are solved at once."""
+
 _ROOT = np.sqrt(15.0)
 _A = np.array([[5 / 36, 2 / 9 - _ROOT / 15, 5 / 36 - _ROOT / 30],
                [5 / 36 + _ROOT / 24, 2 / 9, 5 / 36 - _ROOT / 24],
@@ -77,28 +80,39 @@ def integrate(steps: Steps, matrix: Array, source: Array, length: Array, start: 
     count, n = start.shape
     total = len(steps.edges)
     values = np.empty((count, total, n))
-    matrix = matrix.reshape(count, total - 1, 3, n, n)
-    source = source.reshape(count, total - 1, 3, n)
-    order = range(total - 2, -1, -1) if backwards else range(total - 1)
     values[:, -1 if backwards else 0] = start
-    nodes = _A if not backwards else _A[::-1, ::-1]  # the method is symmetric: backwards its stages change places
-    for k in order:
-        step = (steps.edges[k + 1] - steps.edges[k]) * length * (-1.0 if backwards else 1.0)
-        before = values[:, k + 1 if backwards else k]
-        transposed = -np.swapaxes(matrix[:, k], -1, -2)  # N x 3 x n x n
-        system = -step[:, None, None, None, None] * transposed[:, :, None] * nodes[:, :, None, None]
-        system = np.swapaxes(system, 2, 3).reshape(count, 3 * n, 3 * n) + np.eye(3 * n)
-        right = np.einsum("nsij,nj->nsi", transposed, before) - source[:, k]
-        slopes = _solved(system, right.reshape(count, 3 * n)).reshape(count, 3, n)
-        values[:, k if backwards else k + 1] = before + step[:, None] * np.einsum("s,nsi->ni", _B, slopes)
+    group = max(1, LARGEST_BATCH // ((total - 1) * 3 * n * (4 * n + 1) or 1))
+    for first in range(0, count, group):
+        own = slice(first, first + group)
+        turned, added = _moves(steps, matrix[own], source[own], length[own], backwards)
+        part = values[own]
+        for k in range(total - 2, -1, -1) if backwards else range(total - 1):
+            before = part[:, k + 1 if backwards else k]
+            part[:, k if backwards else k + 1] = before + (turned[:, k] @ before[:, :, None])[:, :, 0] + added[:, k]
     return values
+
+
+def _moves(steps: Steps, matrix: Array, source: Array, length: Array, backwards: bool) -> tuple[Array, Array]:
+    """What each step adds to the solution: a matrix times it (N x E-1 x n x n), and a vector (N x E-1 x n)."""
+    (count, _, n, _), total = matrix.shape, len(steps.edges)
+    nodes = _A if not backwards else _A[::-1, ::-1]  # the method is symmetric: backwards its stages change places
+    step = np.diff(steps.edges) * length[:, None] * (-1.0 if backwards else 1.0)
+    transposed = -np.swapaxes(matrix, -1, -2).reshape(count, total - 1, 3, n, n)
+    system = -step[:, :, None, None, None, None] * transposed[:, :, :, None] * nodes[:, :, None, None]
+    system = np.swapaxes(system, 3, 4).reshape(-1, 3 * n, 3 * n) + np.eye(3 * n)
+    right = np.concatenate([transposed, -source.reshape(count, total - 1, 3, n, 1)], axis=-1)
+    slopes = _solved(system, right.reshape(-1, 3 * n, n + 1)).reshape(count, total - 1, 3, n, n + 1)
+    moves = step[:, :, None, None] * np.einsum("s,nksij->nkij", _B, slopes)
+    return moves[..., :n], moves[..., n]
 
 
 def _solved(system: Array, right: Array) -> Array:
     """Solve all systems; those that hold undefined numbers have an undefined solution."""
-    good = np.isfinite(system).all(axis=(1, 2)) & np.isfinite(right).all(axis=1)
+    good = np.isfinite(system).all(axis=(1, 2)) & np.isfinite(right).all(axis=(1, 2))
+    if good.all():
+        return np.asarray(np.linalg.solve(system, right))
     answer = np.full_like(right, np.nan)
-    answer[good] = np.linalg.solve(system[good], right[good][:, :, None])[:, :, 0]
+    answer[good] = np.linalg.solve(system[good], right[good])
     return answer
 
 

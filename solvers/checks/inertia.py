@@ -31,6 +31,8 @@ PUSHED = 1e-6
 """Multipliers, times the size of the variable and relative to its measure, that count as holding a limit."""
 NOISE = 1e-9
 """Rounding error of the factors that leaves the margin trustworthy; entries of the Hessian are of the order of one."""
+FEW = 400
+"""Up to so many variables a full matrix is factorized sooner than a sparse one."""
 SWEEPS = 500
 """Most iterations of the least squares that put a direction onto the constraints."""
 
@@ -161,6 +163,8 @@ def count_negative(
         return Count(0, None)
     if deadline.over:
         raise TimeoutError
+    if len(columns) <= FEW and _positive(second, columns, np.flatnonzero(rows), shift):
+        return Count(0, None)
     local, coupling = _normal(second.jacobian[near][:, columns]), _normal(second.jacobian[far][:, columns])
     hessian = second.hessian[columns][:, columns] + shift * second.metric[columns][:, columns]
     penalized = (hessian + local.T @ local / PENALTY).tocsc()
@@ -199,6 +203,21 @@ def count_negative(
     except ArpackError as error:
         vectors = getattr(error, "eigenvectors", None)
     return Count(negative, None if vectors is None or not vectors.size else vectors[: len(columns)])
+
+
+def _positive(second: Second, columns: Indices, rows: Indices, shift: float) -> bool:
+    """Whether the form with its penalty is proved positive by a Cholesky factor of the whole: few numbers are sooner
+    multiplied than looked for."""
+    jacobian = second.jacobian.toarray()[np.ix_(rows, columns)]
+    length = np.sqrt(np.einsum("ij,ij->i", jacobian, jacobian))
+    jacobian = jacobian[length > 1e-14] / length[length > 1e-14, None]
+    form = (second.hessian + shift * second.metric).toarray()[np.ix_(columns, columns)]
+    whole = (form + form.T) / 2 + jacobian.T @ jacobian / PENALTY
+    try:
+        factor = np.linalg.cholesky(whole)
+    except np.linalg.LinAlgError:
+        return False
+    return bool(np.abs(factor @ factor.T - whole).max() < NOISE)
 
 
 def _factorized(band: sp.csc_matrix) -> tuple[Callable[[Array], Array] | None, int]:
