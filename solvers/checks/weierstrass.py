@@ -75,16 +75,17 @@ def best_trials(sampler: Sampler) -> tuple[Array, Array, NDArray[np.int64]]:
     best, value = np.zeros(len(own)), np.zeros(len(own))
     control = np.zeros(len(own), dtype=np.int64)
     for j in bent_controls(sampler):
-        for trial in _trials(sampler, j):
-            v = sample.v.copy()
-            v[:, n + j] = trial
-            outputs = mapped(sampler.point.value, v, sample.d)
-            there = _hamiltonian(sampler, outputs, weights) / length
-            first = np.minimum((trial - sample.v[:, n + j]) * slopes[:, j], 0.0)
-            gain = np.nan_to_num((own - there + first) / sampler.power, nan=0.0, posinf=0.0, neginf=0.0)
-            gain[~admissible(outputs)] = 0.0
-            better = gain > best
-            best[better], value[better], control[better] = gain[better], trial[better], j
+        trials = _trials(sampler, j)
+        v = np.tile(sample.v, (len(trials), 1))
+        v[:, n + j] = trials.ravel()
+        made = mapped(sampler.point.value, v, np.tile(sample.d, (len(trials), 1)))
+        there = _hamiltonian(sampler, made, np.tile(weights, (len(trials), 1))).reshape(trials.shape) / length
+        first = np.minimum((trials - sample.v[:, n + j]) * slopes[:, j], 0.0)
+        gains = np.nan_to_num((own - there + first) / sampler.power, nan=0.0, posinf=0.0, neginf=0.0)
+        gains[~admissible(made).reshape(trials.shape)] = 0.0
+        chosen = np.argmax(gains, axis=0), np.arange(len(own))
+        better = gains[chosen] > best
+        best[better], value[better], control[better] = gains[chosen][better], trials[chosen][better], j
     return best, value, control
 
 
@@ -96,15 +97,15 @@ def _hamiltonian(sampler: Sampler, outputs: Array, weights: Array) -> Array:
     return np.asarray(terms.sum(axis=1))
 
 
-def _trials(sampler: Sampler, j: int) -> list[Array]:
-    """Values of a control at every place of the grid of halves, one array for each trial."""
+def _trials(sampler: Sampler, j: int) -> Array:
+    """Values of a control at every place of the grid of halves (trials x places)."""
     own = sampler.halves.v[:, sampler.point.states + j]
     lower, upper = sampler.bounds[2][j], sampler.bounds[3][j]
     if np.isfinite(upper - lower):
-        return [np.full_like(own, lower + share * (upper - lower)) for share in SHARES]
+        return np.repeat((lower + SHARES * (upper - lower))[:, None], len(own), axis=1)
     size = sampler.control_sizes[j]
     steps = [own + side * step * size for step in STEPS for side in (-1.0, 1.0)]
-    return [np.clip(values, lower, upper) for values in (*steps, -own, np.zeros_like(own))]
+    return np.clip(np.stack([*steps, -own, np.zeros_like(own)]), lower, upper)
 
 
 class _Admissible:

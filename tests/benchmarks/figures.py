@@ -6,12 +6,16 @@
 from __future__ import annotations
 
 import os
+import re
 import statistics
 import sys
 import time
 from collections.abc import Callable, Iterable, Iterator
+from concurrent.futures import ProcessPoolExecutor
 from dataclasses import dataclass
 from math import nan
+from multiprocessing import get_context
+from pathlib import Path
 from unittest import mock
 
 from service.threads import ONE_THREAD
@@ -22,9 +26,11 @@ from service import samples  # noqa: E402  the libraries read the environment wh
 from service.assemble import assemble  # noqa: E402
 from service.spec import read  # noqa: E402
 from solvers import pursuit  # noqa: E402
+from solvers.functions import compile_problem  # noqa: E402
 from solvers.guess import guesses  # noqa: E402
-from solvers.ipopt import Minimum, Start, minimise  # noqa: E402
+from solvers.ipopt import Iterate, Minimum, Start, minimise  # noqa: E402
 from solvers.layout import layout  # noqa: E402
+from solvers.lowering import lower  # noqa: E402
 from solvers.mesh import uniform  # noqa: E402
 from solvers.scaling import find_row_sizes, find_scales  # noqa: E402
 from solvers.solution import Solution  # noqa: E402
@@ -149,37 +155,49 @@ def above_floor(name: str) -> Beside:
 
 @dataclass(frozen=True)
 class Size:
-    """What one iteration costs on one mesh: seconds and bytes."""
+    """What one mesh costs: seconds for each iteration, and megabytes at most beyond what was loaded before."""
 
     intervals: int
     unknowns: int
-    iterations: int
-    per_iteration: float
+    iteration: float
+    megabytes: float
 
 
-ITERATIONS = 8
+ITERATIONS = 6
 """How many iterations are timed on each mesh."""
 
 
-def growth(name: str = "C16a", counts: tuple[int, ...] = (25, 250, 2500)) -> Iterator[Size]:
-    """Meshes of ten times as many intervals each: the same few iterations on each."""
-    from solvers.functions import compile_problem
-    from solvers.lowering import lower
-
-    compiled = compile_problem(lower(assemble(read(text(name)))))
+def growth(name: str = "C16a", counts: tuple[int, ...] = (30, 300, 3000)) -> Iterator[Size]:
+    """Meshes of ten times as many intervals each, the same few iterations on each, every mesh in a process of its own."""
     for count in counts:
+        with ProcessPoolExecutor(1, get_context("spawn")) as pool:
+            yield pool.submit(on_mesh, name, count).result()
+
+
+def on_mesh(name: str, count: int) -> Size:
+    """A few iterations on one uniform mesh."""
+    compiled = compile_problem(lower(assemble(read(text(name)))))
+    program, start = from_first_guess(compiled, uniform(1, 8, 4))
+    minimise(program, start)
+    before = _megabytes("VmRSS")
+    Path("/proc/self/clear_refs").write_text("5")  # forget the peak so far
+    laps = []
+    for _ in range(3):
         program, start = from_first_guess(compiled, uniform(1, count, 4))
-        laps = []
-        for _ in range(2 if count > 1000 else 5):
-            reached: list[float] = []
+        reached: list[float] = []
 
-            def stop(iterate, reached=reached) -> bool:
-                reached.append(time.process_time())
-                return iterate.number >= ITERATIONS
+        def stop(iterate: Iterate, reached: list[float] = reached) -> bool:
+            reached.append(time.process_time())
+            return iterate.number >= ITERATIONS
 
-            minimise(program, start, watch=stop)
-            laps.append((reached[-1] - reached[0]) / (len(reached) - 1))
-        yield Size(count, program.layout.size, len(reached) - 1, min(laps))
+        minimise(program, start, watch=stop)
+        laps.append((reached[-1] - reached[0]) / (len(reached) - 1))
+    return Size(count, program.layout.size, min(laps), _megabytes("VmHWM") - before)
+
+
+def _megabytes(line: str) -> float:
+    """What the kernel tells of this process's memory."""
+    return int(re.search(rf"^{line}: +(\d+) kB", Path("/proc/self/status").read_text(), re.M)[1]) / 1024
 
 
 def _script_table(names: list[str]) -> None:
@@ -212,9 +230,9 @@ def _floor_table(names: list[str]) -> None:
 
 
 def _growth_table(names: list[str]) -> None:
-    print("intervals  unknowns  ms per iteration")
+    print("intervals  unknowns  ms per iteration  MB")
     for size in growth(*names[:1]):
-        print(f"{size.intervals:9}  {size.unknowns:8}  {1e3 * size.per_iteration:.2f}", flush=True)
+        print(f"{size.intervals:9}  {size.unknowns:8}  {1e3 * size.iteration:16.1f}  {size.megabytes:.0f}", flush=True)
 
 
 SMALL = ("chute", "hose", "A38b")
