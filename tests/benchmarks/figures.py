@@ -197,7 +197,7 @@ def on_mesh(name: str, count: int) -> Size:
 
 def _megabytes(line: str) -> float:
     """What the kernel tells of this process's memory."""
-    return int(re.search(rf"^{line}: +(\d+) kB", Path("/proc/self/status").read_text(), re.M)[1]) / 1024
+    return int(re.search(rf"^{line}:\s+(\d+) kB", Path("/proc/self/status").read_text(), re.M)[1]) / 1024
 
 
 def _script_table(names: list[str]) -> None:
