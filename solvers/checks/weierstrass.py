@@ -105,7 +105,7 @@ def _trials(sampler: Sampler, j: int) -> Array:
         return np.repeat((lower + SHARES * (upper - lower))[:, None], len(own), axis=1)
     size = sampler.control_sizes[j]
     steps = [own + side * step * size for step in STEPS for side in (-1.0, 1.0)]
-    return np.clip(np.stack([*steps, -own, np.zeros_like(own)]), lower, upper)
+    return np.asarray(np.clip(np.stack([*steps, -own, np.zeros_like(own)]), lower, upper))
 
 
 class _Admissible:

@@ -1,6 +1,6 @@
 """How long we take beside what else one could do, in processor time of one process; prints tables.
 
-    python -m tests.benchmarks.figures script|floor|growth|small [IDS]...
+python -m tests.benchmarks.figures script|floor|growth|small [IDS]...
 """
 
 from __future__ import annotations
@@ -16,29 +16,30 @@ from dataclasses import dataclass
 from math import nan
 from multiprocessing import get_context
 from pathlib import Path
+from typing import Any
 from unittest import mock
 
 from service.threads import ONE_THREAD
 
 os.environ.update(ONE_THREAD)
 
-from service import samples  # noqa: E402  the libraries read the environment when they are loaded
-from service.assemble import assemble  # noqa: E402
-from service.spec import read  # noqa: E402
-from solvers import pursuit  # noqa: E402
-from solvers.functions import compile_problem  # noqa: E402
-from solvers.guess import guesses  # noqa: E402
-from solvers.ipopt import Iterate, Minimum, Start, minimise  # noqa: E402
-from solvers.layout import layout  # noqa: E402
-from solvers.lowering import lower  # noqa: E402
-from solvers.mesh import uniform  # noqa: E402
-from solvers.scaling import find_row_sizes, find_scales  # noqa: E402
-from solvers.solution import Solution  # noqa: E402
-from solvers.solve import solve  # noqa: E402
-from solvers.transcription import Program, transcribe  # noqa: E402
-from tests.acceptance.catalogue import CATALOGUE, HARD  # noqa: E402
-from tests.benchmarks import scripted  # noqa: E402
-from tests.benchmarks.scripts import SCRIPTS  # noqa: E402
+from service import samples
+from service.assemble import assemble
+from service.spec import read
+from solvers import pursuit
+from solvers.functions import compile_problem
+from solvers.guess import guesses
+from solvers.ipopt import Iterate, Minimum, Start, minimise
+from solvers.layout import layout
+from solvers.lowering import lower
+from solvers.mesh import uniform
+from solvers.scaling import find_row_sizes, find_scales
+from solvers.solution import Solution
+from solvers.solve import solve
+from solvers.transcription import Program, transcribe
+from tests.acceptance.catalogue import CATALOGUE, HARD
+from tests.benchmarks import scripted
+from tests.benchmarks.scripts import SCRIPTS
 
 TOLERANCE = 1e-6
 """Relative, of the value: that of our documents, and that to which the script's meshes agree."""
@@ -58,11 +59,11 @@ def ours(name: str) -> Solution:
     return solve(assemble(read(text(name))))
 
 
-def seconds(work: Callable[[], object]) -> float:
-    """Processor time of one call."""
+def timed(work: Callable[..., Any], *arguments: Any, **named: Any) -> tuple[float, Any]:
+    """Processor time of one call, and what it returns."""
     began = time.process_time()
-    work()
-    return time.process_time() - began
+    result = work(*arguments, **named)
+    return time.process_time() - began, result
 
 
 def warm_up() -> None:
@@ -99,20 +100,20 @@ def beside_script(name: str) -> Beside:
     case, script = CATALOGUE[name], SCRIPTS[name]
     our_laps, laps = [], []
     for _ in range(3):
-        found: list[scripted.Found] = []
-        solved: list[Solution] = []
-        our_laps.append(seconds(lambda: solved.append(ours(name))))  # noqa: B023  called at once
-        laps.append(seconds(lambda: found.append(scripted.solve(script, TOLERANCE))))  # noqa: B023
-        if laps[-1] > BRIEF:
+        lap, solution = timed(ours, name)
+        our_laps.append(lap)
+        lap, found = timed(scripted.solve, script, TOLERANCE)
+        laps.append(lap)
+        if lap > BRIEF:
             break
 
     def error(value: float | None) -> float:
         return nan if value is None else abs(value - case.value) / (abs(case.value) or 1.0)
 
-    value = -found[0].value if case.sort.name == "MAXIMUM" else found[0].value
+    value = -found.value if case.sort.name == "MAXIMUM" else found.value
     unit = assemble(read(text(name))).value_unit.factor
-    return Beside(name, min(our_laps), min(laps), error(solved[0].value / unit), error(value), found[0].agreed,
-                  f"{found[0].intervals}")  # fmt: skip
+    return Beside(name, min(our_laps), min(laps), error(solution.value / unit), error(value), found.agreed,
+                  f"{found.intervals}")  # fmt: skip
 
 
 def last_program(name: str) -> Program:
@@ -140,17 +141,16 @@ def from_first_guess(compiled, mesh) -> tuple[Program, Start]:
 
 def above_floor(name: str) -> Beside:
     """Ours beside one bare call of the minimiser on our last mesh from our first guess."""
-    took = seconds(lambda: ours(name))
+    took, _ = timed(ours, name)
     if took > LONGEST:
         return Beside(name, took, nan, finished=False, note="too long")
     last = last_program(name)
     program, start = from_first_guess(last.compiled, last.mesh)
-    minima: list[Minimum] = []
-    bare = seconds(lambda: minima.append(minimise(program, start, options={"ipopt.max_cpu_time": LONGEST})))
+    bare, minimum = timed(minimise, program, start, options={"ipopt.max_cpu_time": LONGEST})
     if took < BRIEF:
-        took = min(took, seconds(lambda: ours(name)))
-        bare = min(bare, seconds(lambda: minimise(program, start)))
-    return Beside(name, took, bare, finished=minima[0].outcome in pursuit.SOLVED, note=minima[0].outcome.value)
+        took = min(took, timed(ours, name)[0])
+        bare = min(bare, timed(minimise, program, start)[0])
+    return Beside(name, took, bare, finished=minimum.outcome in pursuit.SOLVED, note=minimum.outcome.value)
 
 
 @dataclass(frozen=True)
@@ -168,7 +168,7 @@ ITERATIONS = 6
 
 
 def growth(name: str = "C16a", counts: tuple[int, ...] = (30, 300, 3000)) -> Iterator[Size]:
-    """Meshes of ten times as many intervals each, the same few iterations on each, every mesh in a process of its own."""
+    """The same few iterations on meshes of ten times as many intervals each, every one in a process of its own."""
     for count in counts:
         with ProcessPoolExecutor(1, get_context("spawn")) as pool:
             yield pool.submit(on_mesh, name, count).result()
@@ -240,7 +240,7 @@ SMALL = ("chute", "hose", "A38b")
 
 def small(name: str, rounds: int = 5) -> float:
     """Seconds of processor time for a small problem in a warm process: the least of some rounds."""
-    return min(seconds(lambda: ours(name)) for _ in range(rounds))
+    return min(timed(ours, name)[0] for _ in range(rounds))
 
 
 def _small_table(names: list[str]) -> None:

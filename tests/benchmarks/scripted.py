@@ -142,7 +142,7 @@ def _on_mesh(script: Script, count: int, before: Curve | None) -> tuple[float, C
 
 
 def _sketch(script: Script, shares: np.ndarray, inner: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
-    """The first guess of states and controls: lines between what is given, the value of one end where the other's free."""
+    """The first guess: lines between the given ends (level where one is free) and the given controls."""
     if script.sketch is not None:
         return np.array([script.sketch(s)[0] for s in shares]), np.array([script.sketch(s)[1] for s in inner])
     lines = []
