@@ -89,7 +89,6 @@ OPTIONS: dict[str, Any] = {
     "ipopt.print_level": 0,
     "ipopt.sb": "yes",
     "ipopt.linear_solver": "mumps",
-    "ipopt.mumps_pivot_order": 6,  # minimum degree that knows nearly full rows: a free end has one
     "ipopt.tol": 1e-12,
     "ipopt.constr_viol_tol": 1e-10,
     "ipopt.dual_inf_tol": 1e-6,
