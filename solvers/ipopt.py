@@ -103,7 +103,6 @@ OPTIONS: dict[str, Any] = {
     "ipopt.nlp_scaling_method": "none",
     "ipopt.constr_mult_init_max": 0.0,  # first multipliers by least squares cost a factorization and save no iteration
     "ipopt.mu_strategy": "adaptive",
-    "ipopt.mu_oracle": "probing",  # as good as the default here, and never slow
     "ipopt.fixed_variable_treatment": "make_parameter",
     "print_time": False,
     "show_eval_warnings": False,

@@ -45,6 +45,8 @@ OUTGROWN = 30.0
 """How much larger than its first size a quantity may end before its size counts as wrong."""
 MANY_STATES = 24
 """States at each node beyond which a program is wide."""
+DOUBTFUL_ITERATIONS = 200
+"""Iterations of further tries once one start has led to a conflict."""
 FEW_ITERATIONS = 100
 """Iterations within which a solve from a related trajectory must be through: it starts near its end."""
 AIM = 0.1
@@ -296,12 +298,13 @@ def _begin(pursuit: Pursuit, minimise_: _Minimiser) -> tuple[Program, Minimum] |
     compiled = pursuit.compiled
     stretches = len(pursuit.problem.places) - 1
     ends: list[End] = []
+    conflict = False
     for attempt, options in enumerate(ATTEMPTS):
         mesh = first_mesh(stretches, FIRST_INTERVALS * (1 if attempt < 2 else 2))
         where = layout(compiled, mesh)
         for guess in guesses(compiled, mesh, where)[: 2 if attempt else 3]:
             program = make_program(compiled, mesh, where, guess.z)
-            doubtful = {"ipopt.max_iter": FEW_ITERATIONS} if End.INFEASIBLE in ends else {}
+            doubtful = {"ipopt.max_iter": DOUBTFUL_ITERATIONS} if End.INFEASIBLE in ends else {}
             minimum = minimise_(program, Start(guess.z / program.scale), options | doubtful)
             if minimum.outcome is Outcome.FAILED and _outgrown(minimum):
                 z = minimum.z * program.scale
@@ -315,8 +318,11 @@ def _begin(pursuit: Pursuit, minimise_: _Minimiser) -> tuple[Program, Minimum] |
                 return None
         if attempt == 0 and End.INFEASIBLE in ends:  # to find out is quicker than to fail with other settings
             begun = _after_least_violation(pursuit, minimise_)
-            if begun is not None or pursuit.end in (End.INFEASIBLE, End.STOPPED, End.TIME):
+            conflict = pursuit.end is End.INFEASIBLE
+            if begun is not None or pursuit.end in (End.STOPPED, End.TIME):
                 return begun
+            if conflict and convex_curves(pursuit.problem):
+                return None
     if set(ends) == {End.UNDEFINED}:
         mesh = first_mesh(stretches)
         where = layout(compiled, mesh)
@@ -325,6 +331,9 @@ def _begin(pursuit: Pursuit, minimise_: _Minimiser) -> tuple[Program, Minimum] |
         return None
     if End.UNBOUNDED in ends:
         pursuit.end = End.UNBOUNDED
+        return None
+    if conflict:
+        pursuit.end = End.INFEASIBLE
         return None
     return _after_least_violation(pursuit, minimise_)
 
