@@ -17,11 +17,11 @@ from solvers.formula.nodes import At, Call, Name, Node, Number, Relation, walk
 from solvers.formula.parser import Tables, parse_expression, parse_relation
 from solvers.formula.printer import numeral, text
 from solvers.formula.tokens import read_name
-from solvers.lowering import Quantity, lower, primed
-from solvers.necessary import necessary_conditions
-from solvers.necessary_arcs import necessary_on_arcs
+from solvers.necessary.conditions import necessary_conditions
+from solvers.necessary.on_arcs import necessary_on_arcs
 from solvers.problem import Place, Problem, Unknown
-from solvers.tables import Between, Outside, Table
+from solvers.tables.table import Between, Outside, Table
+from solvers.transcription.lowering import Quantity, lower, primed
 from solvers.units import Unit
 from web.unit_text import per
 

@@ -7,8 +7,8 @@ from itertools import zip_longest
 from typing import Any
 
 from service.complaints import listing
-from solvers.lowering import primed
 from solvers.problem import Arc, Jump, Problem
+from solvers.transcription.lowering import primed
 
 
 def arcs_read(problem: Problem) -> Iterator[dict[str, Any]]:

@@ -17,18 +17,18 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from solvers import refinement
+from solvers.answers.response import Response, SingularError
+from solvers.answers.sensitivity import limit_shifts
 from solvers.deadline import Deadline
-from solvers.functions import with_constants
-from solvers.ipopt import Minimum, Outcome
-from solvers.layout import layout
-from solvers.newton import within_limits
-from solvers.pursuit import make_program
-from solvers.response import Response, SingularError
-from solvers.sensitivity import limit_shifts
+from solvers.minimise.ipopt import Minimum, Outcome
+from solvers.minimise.newton import within_limits
+from solvers.search import refinement
+from solvers.search.pursuit import make_program
 from solvers.solution import Branch, BranchPoint
-from solvers.trajectory import Trajectory, carry, trajectory
-from solvers.transcription import Program, restated
+from solvers.transcription.functions import with_constants
+from solvers.transcription.layout import layout
+from solvers.transcription.program import Program, restated
+from solvers.transcription.trajectory import Trajectory, carry, trajectory
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]

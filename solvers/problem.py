@@ -12,7 +12,7 @@ from dataclasses import dataclass, field, replace
 from enum import Enum
 
 from solvers.formula.nodes import Node
-from solvers.tables import Table
+from solvers.tables.table import Table
 from solvers.units import PLAIN, Unit
 
 

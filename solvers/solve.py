@@ -13,39 +13,39 @@ import numpy as np
 from numpy.typing import NDArray
 
 from solvers import checks
-from solvers.arc_guess import with_sketches
-from solvers.beside import side_by_side
-from solvers.broken import with_corner
-from solvers.chatter import chatter
+from solvers.answers.fit import fit
+from solvers.answers.prices import prices
+from solvers.answers.sensitivity import slopes
 from solvers.checks import lower_bound
 from solvers.checks.redundancy import unambiguous
 from solvers.curve import Curve
 from solvers.deadline import Deadline, in_seconds
 from solvers.diagnosis import diagnose
-from solvers.evaluation import point_outputs
-from solvers.extremals import solve_from_starts
-from solvers.fit import fit
-from solvers.functions import compile_problem
-from solvers.gauge import Gauged, in_parametric_form
-from solvers.graph import as_graph, checks_on_graph, prices_of_original, uprights
-from solvers.guess import guesses
-from solvers.ipopt import FLOOR
-from solvers.layout import layout
-from solvers.lowering import lower, primed
-from solvers.prices import prices
+from solvers.forms.arc_guess import with_sketches
+from solvers.forms.beside import side_by_side
+from solvers.forms.broken import with_corner
+from solvers.forms.gauge import Gauged, in_parametric_form
+from solvers.forms.graph import as_graph, checks_on_graph, prices_of_original, uprights
+from solvers.forms.rejoin import rejoin
+from solvers.forms.signs import never_negative, positive, positive_along
+from solvers.forms.slack import SLACK, rounded_functions, with_slacks
+from solvers.minimise.ipopt import FLOOR
 from solvers.problem import Continuation, Problem, Seek
-from solvers.pursuit import End, Pursuit, first_mesh, go_on, pursue
-from solvers.rejoin import rejoin
-from solvers.scaling import find_scales
-from solvers.sensitivity import slopes
-from solvers.sharpen import sharpen
-from solvers.signs import never_negative, positive, positive_along
-from solvers.slack import SLACK, rounded_functions, with_slacks
+from solvers.search.chatter import chatter
+from solvers.search.pursuit import End, Pursuit, first_mesh, go_on, pursue
+from solvers.search.sharpen import sharpen
+from solvers.search.structure import present_switches
 from solvers.solution import BranchPoint, Change, Check, Price, Progress, Slope, Solution, SwitchPlace, Verdict, Watch
-from solvers.structure import present_switches
+from solvers.starts.extremals import solve_from_starts
+from solvers.starts.guess import guesses
 from solvers.sweep import Found, Tools, sweep
-from solvers.trajectory import Trajectory, costate_curve, curve
-from solvers.usage import table_notes
+from solvers.tables.usage import table_notes
+from solvers.transcription.evaluation import point_outputs
+from solvers.transcription.functions import compile_problem
+from solvers.transcription.layout import layout
+from solvers.transcription.lowering import lower, primed
+from solvers.transcription.scaling import find_scales
+from solvers.transcription.trajectory import Trajectory, costate_curve, curve
 from solvers.verdict import judge
 
 Array = NDArray[np.float64]
@@ -353,7 +353,7 @@ def _changes(path: Trajectory, depends: tuple[Slope, ...]) -> tuple[tuple[Change
         return (), ""
     if path.program.layout.size > LARGEST:
         return (), f"How the tolerances change the curve is left out: the mesh has more than {LARGEST:,} unknowns."
-    from solvers.response import SingularError, changes  # here, so that SciPy is loaded only where it is needed
+    from solvers.answers.response import SingularError, changes  # here, so that SciPy is loaded only where it is needed
 
     try:
         return changes(path), ""

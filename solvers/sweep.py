@@ -16,21 +16,21 @@ from itertools import product
 import numpy as np
 from numpy.typing import NDArray
 
-from solvers import refinement
 from solvers.checks import curvature, limits, lower_bound, motion
 from solvers.checks import refinement as refinement_check
 from solvers.deadline import Deadline
-from solvers.functions import Compiled, with_constants
-from solvers.gauge import Gauged, in_parametric_form
-from solvers.ipopt import CLOSE, FLOOR, Minimum, Start, minimise
-from solvers.newton import stationary_point
-from solvers.numbers import Numbers
+from solvers.forms.gauge import Gauged, in_parametric_form
+from solvers.minimise.ipopt import CLOSE, FLOOR, Minimum, Start, minimise
+from solvers.minimise.newton import stationary_point
 from solvers.problem import Problem, Seek
-from solvers.pursuit import SOLVED, End, Pursuit, go_on
+from solvers.search import refinement
+from solvers.search.pursuit import SOLVED, End, Pursuit, go_on
+from solvers.search.structure import SWITCH
 from solvers.solution import Check, MeshStep, Progress, Solution, Status, SweepPoint, Verdict, Watch
-from solvers.structure import SWITCH
-from solvers.trajectory import Trajectory, trajectory
-from solvers.transcription import Program, restated
+from solvers.transcription.functions import Compiled, with_constants
+from solvers.transcription.numbers import Numbers
+from solvers.transcription.program import Program, restated
+from solvers.transcription.trajectory import Trajectory, trajectory
 
 Array = NDArray[np.float64]
 Index = tuple[int, ...]

@@ -7,7 +7,7 @@ from typing import Any
 
 import numpy as np
 
-from solvers.tables import Between, Outside, Table
+from solvers.tables.table import Between, Outside, Table
 from solvers.units import Unit
 
 

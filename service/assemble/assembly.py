@@ -32,7 +32,7 @@ from service.units import Measure
 from solvers.formula.nodes import At, Call, Name, Node, Number, children, walk, with_children
 from solvers.formula.printer import text
 from solvers.problem import Condition, Equation, Options, Problem, Seek, Unknown
-from solvers.tables import Table
+from solvers.tables.table import Table
 from solvers.units import PLAIN, Unit
 
 LARGEST_SIZE = 10_000

@@ -12,7 +12,7 @@ from service.assemble.quoting import quoted
 from service.assemble.ranges import empty_ranges, excluded_values
 from service.assemble.values import FixedValues
 from service.complaints import Complaint, Refused, Stage, listing, refuse
-from solvers.beside import side_by_side
+from solvers.forms.beside import side_by_side
 from solvers.formula.nodes import At, Name, Node, walk
 from solvers.observations import placed, terminal
 from solvers.problem import Condition, Problem

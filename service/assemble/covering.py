@@ -24,7 +24,7 @@ from solvers.formula.evaluate import REAL, evaluate
 from solvers.formula.nodes import Lookup, Name, Node, Number, Relation, walk
 from solvers.formula.printer import text
 from solvers.problem import Condition, Problem
-from solvers.tables import Outside
+from solvers.tables.table import Outside
 from solvers.units import Unit
 
 TRIED = 201

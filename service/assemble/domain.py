@@ -10,7 +10,7 @@ from service.assemble.quoting import quoted
 from service.complaints import Complaint
 from solvers.formula.evaluate import REAL, evaluate
 from solvers.formula.nodes import At, Call, Name, Node, Number, Power, Product, Relation, children, walk, with_children
-from solvers.tables import OutsideRangeError
+from solvers.tables.table import OutsideRangeError
 
 Values = Mapping[str, float]
 """Constants by name, in SI."""

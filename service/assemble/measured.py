@@ -16,7 +16,7 @@ from service.units import ONE, parse_unit
 from solvers.formula.errors import FormulaError
 from solvers.formula.parser import slope_of
 from solvers.formula.tokens import read_name
-from solvers.tables import Between, Outside, Table
+from solvers.tables.table import Between, Outside, Table
 from solvers.unit_text import UnitTextError
 from solvers.units import Unit
 

@@ -28,10 +28,10 @@ from solvers.checks import (
 )
 from solvers.checks.sampling import Sampler
 from solvers.deadline import Deadline
-from solvers.ipopt import FLOOR
+from solvers.minimise.ipopt import FLOOR
 from solvers.problem import Problem
 from solvers.solution import Check, Status
-from solvers.trajectory import Trajectory
+from solvers.transcription.trajectory import Trajectory
 
 NAMES = (motion.NAME, limits.NAME, conditions.NAME, stationarity.NAME, free_ends.NAME, first_integral.NAME,
          corners.NAME, legendre.NAME, weierstrass.NAME, curvature.NAME, convexity.NAME, lower_bound.NAME, growth.NAME,

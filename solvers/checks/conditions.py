@@ -12,9 +12,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from solvers.checks.sampling import Sampler
-from solvers.evaluation import mapped
-from solvers.limits import constants_of, interval_of
 from solvers.solution import Check, Status
+from solvers.transcription.evaluation import mapped
+from solvers.transcription.limits import constants_of, interval_of
 
 Array = NDArray[np.float64]
 

@@ -15,11 +15,11 @@ from solvers.checks.composition import INF, Bend, Leaf, Shape, Unfold, shape_of
 from solvers.formula.evaluate import REAL, evaluate
 from solvers.formula.nodes import At, Name, Node
 from solvers.formula.substitute import at_place
-from solvers.limits import interval_of, number
-from solvers.lowering import simple_bound
 from solvers.observations import terminal
 from solvers.problem import Condition, Place, Problem, Seek
 from solvers.solution import Check, Status
+from solvers.transcription.limits import interval_of, number
+from solvers.transcription.lowering import simple_bound
 
 NAME = "convexity"
 

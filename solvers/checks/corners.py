@@ -17,10 +17,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from solvers.checks.sampling import Sampler
-from solvers.evaluation import mapped
-from solvers.slack import rounded_functions
+from solvers.forms.slack import rounded_functions
+from solvers.search.structure import SWITCH
 from solvers.solution import Check, Status
-from solvers.structure import SWITCH
+from solvers.transcription.evaluation import mapped
 
 Array = NDArray[np.float64]
 

@@ -15,10 +15,10 @@ from numpy.typing import NDArray
 
 from solvers.checks.sampling import Sampler
 from solvers.checks.stationarity import complementarity
-from solvers.evaluation import mapped
-from solvers.limits import constants_of, interval_of
+from solvers.search.structure import SWITCH
 from solvers.solution import Check, Status
-from solvers.structure import SWITCH
+from solvers.transcription.evaluation import mapped
+from solvers.transcription.limits import constants_of, interval_of
 
 Array = NDArray[np.float64]
 

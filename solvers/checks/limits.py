@@ -16,8 +16,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from solvers.checks.sampling import Sample, Sampler
-from solvers.limits import constants_of, interval_of
 from solvers.solution import Check, Status
+from solvers.transcription.limits import constants_of, interval_of
 
 Array = NDArray[np.float64]
 

@@ -17,9 +17,9 @@ from solvers.checks.composition import Leaf, Shape, Unfold, shape_of
 from solvers.checks.convexity import known, unfolding
 from solvers.checks.sampling import Sampler
 from solvers.formula.nodes import Name, Node
-from solvers.limits import number
 from solvers.problem import Place, Problem, Seek
 from solvers.solution import Check, Status
+from solvers.transcription.limits import number
 
 NAME = "lower bound"
 

@@ -19,8 +19,8 @@ from numpy.typing import NDArray
 
 from solvers.checks.sampling import HALF_WEIGHTS, Sampler
 from solvers.deadline import FOREVER, Deadline
-from solvers.evaluation import mapped
 from solvers.solution import Check, Status
+from solvers.transcription.evaluation import mapped
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]

@@ -23,9 +23,9 @@ from numpy.typing import NDArray
 
 from solvers.checks import free_ends, stationarity
 from solvers.checks.sampling import Sampler
-from solvers.collocation import Family
-from solvers.limits import quantity_bounds
-from solvers.trajectory import Trajectory
+from solvers.transcription.collocation import Family
+from solvers.transcription.limits import quantity_bounds
+from solvers.transcription.trajectory import Trajectory
 
 if TYPE_CHECKING:
     import scipy.sparse as sp

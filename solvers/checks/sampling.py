@@ -14,11 +14,11 @@ from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
 from solvers.checks.adjoint import Continued, continued
-from solvers.evaluation import mapped
-from solvers.limits import quantity_bounds
-from solvers.lowering import primed
 from solvers.problem import Seek
-from solvers.trajectory import Trajectory
+from solvers.transcription.evaluation import mapped
+from solvers.transcription.limits import quantity_bounds
+from solvers.transcription.lowering import primed
+from solvers.transcription.trajectory import Trajectory
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]

@@ -24,10 +24,10 @@ from numpy.typing import NDArray
 
 from solvers.checks.adjoint import variation
 from solvers.checks.sampling import Sampler
-from solvers.collocation import Family
-from solvers.evaluation import mapped
-from solvers.limits import constants_of, interval_of
 from solvers.solution import Check, Status
+from solvers.transcription.collocation import Family
+from solvers.transcription.evaluation import mapped
+from solvers.transcription.limits import constants_of, interval_of
 
 Array = NDArray[np.float64]
 

@@ -12,7 +12,7 @@ from collections.abc import Sequence
 import numpy as np
 from numpy.typing import NDArray
 
-from solvers.tables import Outside, Table, differentiated
+from solvers.tables.table import Outside, Table, differentiated
 
 Array = NDArray[np.float64]
 

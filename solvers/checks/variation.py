@@ -13,7 +13,7 @@ from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
 from solvers.checks.sampling import HALF_WEIGHTS, HALVES, Sample, Sampler
-from solvers.evaluation import mapped
+from solvers.transcription.evaluation import mapped
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]

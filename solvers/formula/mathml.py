@@ -23,7 +23,7 @@ from solvers.formula.nodes import (
     Sum,
 )
 from solvers.formula.printer import ATOM, POWER, PRODUCT, SIGNED, numeral, text, tightness, written
-from solvers.tables import Table
+from solvers.tables.table import Table
 
 GREEK = {
     "alpha": "α", "beta": "β", "gamma": "γ", "delta": "δ", "epsilon": "ε", "zeta": "ζ", "eta": "η", "theta": "θ",

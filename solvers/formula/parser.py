@@ -24,7 +24,7 @@ from solvers.formula.nodes import (
     walk,
 )  # fmt: skip
 from solvers.formula.tokens import Token, tokens
-from solvers.tables import Table
+from solvers.tables.table import Table
 from solvers.units import PLAIN, Unit
 
 DEPTH_LIMIT = 100

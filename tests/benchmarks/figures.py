@@ -26,17 +26,17 @@ os.environ.update(ONE_THREAD)
 from service import samples
 from service.assemble import assemble
 from service.spec import read
-from solvers import pursuit
-from solvers.functions import compile_problem
-from solvers.guess import guesses
-from solvers.ipopt import Iterate, Minimum, Start, minimise
-from solvers.layout import layout
-from solvers.lowering import lower
-from solvers.mesh import uniform
-from solvers.scaling import find_row_sizes, find_scales
+from solvers.minimise.ipopt import Iterate, Minimum, Start, minimise
+from solvers.search import pursuit
 from solvers.solution import Solution
 from solvers.solve import solve
-from solvers.transcription import Program, transcribe
+from solvers.starts.guess import guesses
+from solvers.transcription.functions import compile_problem
+from solvers.transcription.layout import layout
+from solvers.transcription.lowering import lower
+from solvers.transcription.mesh import uniform
+from solvers.transcription.program import Program, transcribe
+from solvers.transcription.scaling import find_row_sizes, find_scales
 from tests.acceptance.catalogue import CATALOGUE, HARD
 from tests.benchmarks import scripted
 from tests.benchmarks.scripts import SCRIPTS

@@ -14,15 +14,15 @@ import pytest
 
 from service.assemble import assemble
 from service.spec import read
-from solvers.collocation import Family, scheme
-from solvers.functions import compile_problem
-from solvers.guess import guesses
-from solvers.ipopt import Start, minimise
-from solvers.layout import layout
-from solvers.lowering import lower
-from solvers.mesh import uniform
-from solvers.scaling import find_row_sizes, find_scales
-from solvers.transcription import transcribe
+from solvers.minimise.ipopt import Start, minimise
+from solvers.starts.guess import guesses
+from solvers.transcription.collocation import Family, scheme
+from solvers.transcription.functions import compile_problem
+from solvers.transcription.layout import layout
+from solvers.transcription.lowering import lower
+from solvers.transcription.mesh import uniform
+from solvers.transcription.program import transcribe
+from solvers.transcription.scaling import find_row_sizes, find_scales
 
 CRANE = (Path(__file__).parents[1] / "acceptance/problems/C16a.json").read_bytes()
 DEGREE = 4

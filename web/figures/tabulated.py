@@ -8,7 +8,7 @@ from typing import Any
 import numpy as np
 
 from solvers.curve import Array
-from solvers.tables import Outside, Table
+from solvers.tables.table import Outside, Table
 from web.extremes import Extremes
 from web.figures import findings
 from web.figures.labels import bracketed, identifier

@@ -2,7 +2,7 @@
 
 import numpy as np
 
-from solvers.tables import Between, Outside, Table
+from solvers.tables.table import Between, Outside, Table
 
 
 def curve(knots, values, between=Between.SMOOTH, outside=Outside.EXTEND, name="f"):

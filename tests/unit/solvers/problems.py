@@ -4,16 +4,16 @@ from __future__ import annotations
 
 import numpy as np
 
-from solvers.collocation import Family
-from solvers.functions import compile_problem
-from solvers.guess import guesses
-from solvers.ipopt import Minimum, Outcome, Start, minimise
-from solvers.layout import layout
-from solvers.lowering import lower
-from solvers.mesh import Mesh, interval, uniform
-from solvers.scaling import find_row_sizes, find_scales
-from solvers.trajectory import trajectory
-from solvers.transcription import transcribe
+from solvers.minimise.ipopt import Minimum, Outcome, Start, minimise
+from solvers.starts.guess import guesses
+from solvers.transcription.collocation import Family
+from solvers.transcription.functions import compile_problem
+from solvers.transcription.layout import layout
+from solvers.transcription.lowering import lower
+from solvers.transcription.mesh import Mesh, interval, uniform
+from solvers.transcription.program import transcribe
+from solvers.transcription.scaling import find_row_sizes, find_scales
+from solvers.transcription.trajectory import trajectory
 from tests.unit.service.assemble import stating
 
 LEAST_TIME = {

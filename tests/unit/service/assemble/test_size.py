@@ -4,7 +4,7 @@ import time
 
 import pytest
 
-from solvers.lowering import lower
+from solvers.transcription.lowering import lower
 from tests.unit.service.assemble.stating import stated
 
 CHAIN = {"a0": "x"} | {f"a{n}": f"(a{n - 1} + a{n - 1})/2" for n in range(1, 99)}

@@ -15,15 +15,15 @@ from service.assemble import assemble
 from service.spec import read
 from solvers.checks.sampling import Sampler
 from solvers.deadline import FOREVER
-from solvers.functions import compile_problem
-from solvers.ipopt import Minimum, Outcome
-from solvers.layout import layout
-from solvers.lowering import lower
-from solvers.mesh import uniform
-from solvers.pursuit import pursue
-from solvers.scaling import find_row_sizes, find_scales
-from solvers.trajectory import trajectory
-from solvers.transcription import transcribe
+from solvers.minimise.ipopt import Minimum, Outcome
+from solvers.search.pursuit import pursue
+from solvers.transcription.functions import compile_problem
+from solvers.transcription.layout import layout
+from solvers.transcription.lowering import lower
+from solvers.transcription.mesh import uniform
+from solvers.transcription.program import transcribe
+from solvers.transcription.scaling import find_row_sizes, find_scales
+from solvers.transcription.trajectory import trajectory
 
 
 def problem_of(document):

@@ -9,8 +9,8 @@ from solvers.checks import curvature, inertia
 from solvers.checks.sampling import Sampler
 from solvers.checks.variation import second_variation
 from solvers.deadline import in_seconds
-from solvers.pursuit import pursue
-from solvers.sharpen import sharpen
+from solvers.search.pursuit import pursue
+from solvers.search.sharpen import sharpen
 from solvers.solution import Status
 from tests.unit.solvers.checks.conftest import problem_of
 

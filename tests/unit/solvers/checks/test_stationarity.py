@@ -8,8 +8,8 @@ import pytest
 from solvers.checks import stationarity
 from solvers.checks.sampling import Sampler
 from solvers.deadline import FOREVER
-from solvers.gauge import in_parametric_form
-from solvers.pursuit import pursue
+from solvers.forms.gauge import in_parametric_form
+from solvers.search.pursuit import pursue
 from solvers.solution import Status
 from tests.unit.solvers.checks.conftest import problem_of
 

@@ -1,7 +1,8 @@
 """Problems whose switches, arcs on limits and touches are unknown places: right ones pass, wrong ones are found out.
 
-The structures are those that `solvers.sharpen` would find; here they are written down, right or deliberately wrong, and
-the structured problem is solved as such: it has a solution of its own, to full accuracy, that is no extremal of the
+The structures are those that `solvers.search.sharpen` would find; here they are written down, right or deliberately
+wrong, and the structured problem is solved as such: it has a solution of its own, to full accuracy, that is no
+extremal of the
 problem that was asked.
 """
 
@@ -12,13 +13,13 @@ import pytest
 
 from solvers import checks
 from solvers.checks.redundancy import unambiguous
-from solvers.collocation import Family
 from solvers.deadline import FOREVER
 from solvers.formula.nodes import Name
-from solvers.mesh import Mesh, interval
 from solvers.problem import Calm, Held, Parameter, Place, Touch
-from solvers.pursuit import pursue
+from solvers.search.pursuit import pursue
 from solvers.solution import Status
+from solvers.transcription.collocation import Family
+from solvers.transcription.mesh import Mesh, interval
 from tests.unit.solvers.checks.conftest import problem_of
 
 # least time from 0 to 1 at rest with |u| <= 1: full ahead, from t = 1 full astern, T = 2

@@ -8,7 +8,7 @@ import pytest
 from solvers.checks import convexity
 from solvers.checks.tabulated import bounds, inside
 from solvers.solution import Status
-from solvers.tables import Between, Outside
+from solvers.tables.table import Between, Outside
 from tests.unit.solvers.checks.conftest import problem_of
 from tests.unit.solvers.measured import curve, surface
 

@@ -1,0 +1,126 @@
+"""Broken extremals: where the integrand is not convex in the slope, the best curve may have a corner.
+
+A smooth stationary curve fails Weierstrass's condition there.  The lower convex hull of the integrand over the slopes,
+at the place where the condition fails most, has a straight piece over the curve's own slope; its two ends are slopes
+between which a corner may lie (Erdmann's conditions say that they have a common tangent).  A curve of these two slopes
+is the start, and the place of its corner an unknown like that of a switch.  The result is taken only if it is better
+and passes the condition itself: curves that gain by ever more corners have no best one.
+
+References: Gelfand, Fomin (1963), Calculus of Variations, section 15; Ekeland, Temam (1976), Convex Analysis and
+Variational Problems, chapter X (relaxation); both from memory.
+"""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from solvers.checks import weierstrass
+from solvers.checks.sampling import Sampler
+from solvers.deadline import Deadline
+from solvers.formula.nodes import Name
+from solvers.problem import Parameter, Place, Problem, Seek
+from solvers.search.pursuit import End, Pursuit, go_on, pursue
+from solvers.search.structure import SWITCH
+from solvers.solution import Status, Watch
+from solvers.transcription.evaluation import mapped
+from solvers.transcription.trajectory import Trajectory
+
+Array = NDArray[np.float64]
+
+WIDEST = 30.0
+"""How far from the curve's own slope, in sizes of it, others are looked at."""
+TRIED = 3
+"""Meshes after which a corner has to have proved itself."""
+SLOPES = 4001
+SAME = 1e-3
+"""Slopes nearer to each other than that, relative to the range, make no corner."""
+
+
+def with_corner(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit | None:
+    """A better pursuit of the same problem whose curve has a corner; None where none is needed or found."""
+    problem = base.problem
+    plain = not problem.dynamics and len(problem.places) == 2 and problem.seek is not Seek.STATIONARY
+    if not base.solved or not plain or len(problem.unknowns) != 1 or problem.unknowns[0].order != 1:
+        return None
+    with np.errstate(all="ignore"):
+        path = base.paths[-1]
+        sampler = Sampler(path)
+        if weierstrass.check(sampler).status is not Status.FAILED:
+            return None
+        slopes = _pair(sampler)
+    found = []
+    for first, second in (slopes, slopes[::-1]) if slopes else ():
+        changed = _bent(problem, path, first, second)
+        if changed is None:
+            continue
+        pursuit = pursue(changed, watch, deadline, meshes=TRIED)
+        if _better(pursuit, base, sampler.sign):
+            found.append(pursuit if pursuit.end is End.CONVERGED else go_on(pursuit, watch, deadline))
+    best = min(found, key=lambda pursuit: sampler.sign * pursuit.paths[-1].value, default=None)
+    if best is not None:
+        best.steps[:0] = base.steps
+        best.iterations += base.iterations
+    return best
+
+
+def _better(pursuit: Pursuit, base: Pursuit, sign: float) -> bool:
+    """Whether the value is better and no other slope would gain anything."""
+    if not pursuit.solved or not sign * (pursuit.paths[-1].value - base.paths[-1].value) < 0:
+        return False
+    with np.errstate(all="ignore"):
+        return weierstrass.check(Sampler(pursuit.paths[-1])).status is Status.PASSED
+
+
+def _pair(sampler: Sampler) -> tuple[float, float] | None:
+    """The ends of the straight piece of the integrand's convex hull over the curve's slope, where most is gained."""
+    gains, _, _ = weierstrass.best_trials(sampler)
+    worst = int(np.argmax(gains * np.abs(sampler.halves.measure)))
+    n = sampler.point.states
+    own = float(sampler.halves.v[worst, n])
+    reach = WIDEST * max(abs(own), float(sampler.control_sizes[0]))
+    lower, upper = float(sampler.bounds[2][0]), float(sampler.bounds[3][0])
+    slopes = np.linspace(max(own - reach, lower), min(own + reach, upper), SLOPES)
+    v, d = (np.repeat(part[worst][None], SLOPES, axis=0) for part in (sampler.halves.v, sampler.halves.d))
+    v[:, n] = slopes
+    values = sampler.sign * mapped(sampler.point.value, v, d)[:, -1]
+    known = np.isfinite(values)
+    corners = _hull(slopes[known], values[known])
+    left, right = corners[corners <= own].max(initial=-np.inf), corners[corners > own].min(initial=np.inf)
+    if not np.isfinite(left + right) or right - left < SAME * 2 * reach + 2 * (slopes[1] - slopes[0]):
+        return None
+    if left == slopes[0] > lower or right == slopes[-1] < upper:  # the hull has no end there: the longer the better
+        return None
+    return float(left), float(right)
+
+
+def _hull(x: Array, y: Array) -> Array:
+    """The x of the corners of the lower convex hull of points in order (Andrew, 1979; from memory)."""
+    kept: list[int] = []
+    for k in range(len(x)):
+        while len(kept) > 1:
+            i, j = kept[-2:]
+            if (y[j] - y[i]) * (x[k] - x[i]) < (y[k] - y[i]) * (x[j] - x[i]):
+                break
+            kept.pop()
+        kept.append(k)
+    return x[kept]
+
+
+def _bent(problem: Problem, path: Trajectory, first: float, second: float) -> Problem | None:
+    """The problem with one free corner, and as guess the curve of two slopes from end to end of the one found."""
+    (start, end), (low, high) = path.places, path.nodes[[0, -1], 0]
+    corner = start + (high - low - second * (end - start)) / (first - second)
+    if not min(start, end) < corner < max(start, end):
+        return None
+    name, unknown = f"{SWITCH} 1", problem.unknowns[0]
+    guess = ((start, low), (corner, low + first * (corner - start)), (end, high))
+    room = sorted((float(start + 0.01 * (end - start)), float(end - 0.01 * (end - start))))
+    return replace(
+        problem,
+        places=(problem.places[0], Place(Name(name), name), problem.places[1]),
+        parameters=(*problem.parameters, Parameter(name, room[0], room[1], float(corner))),
+        unknowns=(replace(unknown, guess=tuple((float(at), float(value)) for at, value in guess)),),
+    )

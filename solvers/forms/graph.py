@@ -1,0 +1,124 @@
+"""A result that was found in parametric form, told as functions of the problem's own independent variable."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import replace
+from functools import partial
+
+import numpy as np
+from numpy.typing import NDArray
+
+from solvers.curve import Curve
+from solvers.forms.gauge import Gauged
+from solvers.forms.regraph import regraph
+from solvers.solution import Change, Check, Finding, Price
+from solvers.transcription.limits import number
+
+Array = NDArray[np.float64]
+
+MIDDLES = (np.arange(16) + 0.5) / 16
+"""Where every interval is looked at."""
+
+
+STEEPEST = 1e-9
+"""Speed along x, relative to its greatest, below which the curve counts as no steeper: there y(x) is vertical."""
+
+
+def as_graph(
+    gauged: Gauged, shape: Curve, multipliers: Curve, factor: float, changes: tuple[Change, ...] = ()
+) -> tuple[Curve, Curve, tuple[Change, ...]]:
+    """Curve, costates and changes of the curve as functions of x.
+
+    `factor` turns costates of the gauged problem into the original's.
+    """
+    x = gauged.original.independent
+    functions: dict[str, Callable[[Array], Array]] = {}
+    names = [unknown.name for unknown in gauged.original.unknowns]
+    for name in names:
+        functions[name] = partial(shape.evaluate, name)
+        functions[name + "'"] = partial(_slope, shape, x, name)
+    costates = {name: partial(_scaled, multipliers, name, factor) for name in names if name in multipliers.functions}
+    wanted = functions | {f"costate {name}": function for name, function in costates.items()}
+    for change in changes:
+        for name in names:
+            wanted[f"{change.constant} {name}"] = partial(_changed, shape, change.curve, x, name)
+    graph = regraph(shape.breaks, partial(shape.evaluate, x), wanted, names[0])
+    breaks = graph.breaks.copy()
+    breaks[0], breaks[-1] = _end(gauged, 0, breaks[0]), _end(gauged, -1, breaks[-1])
+    return (
+        Curve(breaks, {name: graph.functions[name] for name in functions}),
+        Curve(breaks, {name: graph.functions[f"costate {name}"] for name in costates}),
+        tuple(
+            Change(c.constant, Curve(breaks, {name: graph.functions[f"{c.constant} {name}"] for name in names}))
+            for c in changes
+        ),
+    )
+
+
+UPRIGHT = ((1e-6, 1e-2), (1e-3, 0.1))
+"""A curve stands upright where the slope of x along it, relative to its mean, stays below the first number over a rise,
+relative to the extent of the unknown, of more than the second: more than a vertical tangent has (x = y^3: 0.03)."""
+
+
+def uprights(gauged: Gauged, shape: Curve) -> tuple[Finding, ...]:
+    """The pieces along which an unknown changes while x stands still: a function of x jumps there."""
+    x = gauged.original.independent
+    edges = shape.breaks
+    at = (edges[:-1, None] + np.diff(edges)[:, None] * MIDDLES).ravel()
+    step = np.repeat(np.diff(edges), len(MIDDLES)) / len(MIDDLES)
+    forward = shape.evaluate(x + "'", at)
+    places = shape.evaluate(x, at)
+    mean = abs(float(forward @ step)) / float(step.sum())
+    for slope, rise in UPRIGHT:
+        still = np.concatenate([[False], forward <= slope * mean, [False]])
+        pieces = list(
+            zip(np.flatnonzero(still[1:-1] & ~still[:-2]), np.flatnonzero(still[1:-1] & ~still[2:]), strict=True)
+        )
+        found = []
+        for unknown in gauged.original.unknowns:
+            values = shape.evaluate(unknown.name, at)
+            least = rise * (float(np.ptp(values)) or 1.0)
+            found += [Finding(unknown.name, "", None, float(places[first]), "jumps") for first, last in pieces
+                      if abs(values[last] - values[first]) > least]  # fmt: skip
+        if found:
+            return tuple(found)
+    return ()
+
+
+def _end(gauged: Gauged, place: int, found: float) -> float:
+    """An end that is given exactly as it was given; one that is free where it was found."""
+    constants = {c.name: c.value for c in gauged.original.constants}
+    try:
+        return number(gauged.original.places[place].tree, constants)
+    except KeyError:
+        return found
+
+
+def _slope(shape: Curve, x: str, name: str, at: Array) -> Array:
+    return shape.evaluate(name + "'", at) / np.maximum(shape.evaluate(x + "'", at), 1e-300)
+
+
+def _changed(shape: Curve, change: Curve, x: str, name: str, at: Array) -> Array:
+    """The change at a fixed x: what moves along the curve is no change of it."""
+    speed = shape.evaluate(x + "'", at)
+    slope = shape.evaluate(name + "'", at) / np.maximum(speed, STEEPEST * max(float(speed.max()), 1e-300))
+    return np.asarray(change.evaluate(name, at) - slope * change.evaluate(x, at))
+
+
+def _scaled(curve: Curve, name: str, factor: float, at: Array) -> Array:
+    return factor * curve.evaluate(name, at)
+
+
+def checks_on_graph(gauged: Gauged, shape: Curve, checks: tuple[Check, ...]) -> tuple[Check, ...]:
+    """The checks with their places on the problem's own independent variable."""
+    x = gauged.original.independent
+    return tuple(
+        check if check.place is None else replace(check, place=float(shape.evaluate(x, np.array([check.place]))[0]))
+        for check in checks
+    )
+
+
+def prices_of_original(prices: tuple[Price, ...], factor: float) -> tuple[Price, ...]:
+    """The prices of the conditions that the user gave, per unit of the original value."""
+    return tuple(replace(price, price=factor * price.price) for price in prices if price.pointer)

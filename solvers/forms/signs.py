@@ -1,0 +1,69 @@
+"""Is the integrand of one sign?  Only then is the least integral of its square that of the integrand itself.
+
+Where its square is minimised instead (`gauge`), a negative integrand would be driven to zero.  Interval arithmetic
+proves the sign for all curves; where it cannot, the sign is looked at along the first guess and along the curve found:
+near a curve on which the integrand is positive both problems have the same extremals.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from solvers.checks.composition import shape_of
+from solvers.checks.convexity import known, unfolding
+from solvers.curve import Curve
+from solvers.forms.gauge import Gauged
+from solvers.formula.evaluate import evaluate
+from solvers.formula.nodes import Node, Power
+from solvers.problem import Problem
+from solvers.starts.sketch import ARRAYS
+from solvers.transcription.limits import number
+from solvers.transcription.trajectory import Trajectory, curve
+
+Array = NDArray[np.float64]
+
+MIDDLES = (np.arange(8) + 0.5) / 8
+"""Where every interval is looked at."""
+
+
+def never_negative(problem: Problem) -> bool:
+    """Whether the integrand is proved to be nowhere negative, whatever the curve within its bounds."""
+    constants = {c.name: c.value for c in problem.constants}
+    try:
+        first, last = (number(problem.places[k].tree, constants) for k in (0, -1))
+    except KeyError:  # an end is free
+        first, last = -np.inf, np.inf
+    if problem.integrand is None or not first < last:
+        return False
+    return shape_of(problem.integrand, known(problem, constants, first, last), unfolding(problem)).low >= 0
+
+
+def positive(values: Array) -> bool:
+    """Whether values of an integrand are positive somewhere and negative nowhere; undefined ones say nothing."""
+    return bool(np.nanmax(values, initial=-np.inf) > 0 and np.nanmin(values, initial=np.inf) >= 0)
+
+
+def positive_along(gauged: Gauged, path: Trajectory) -> bool:
+    """Whether the integrand whose square was minimised is positive along the curve."""
+    squared, shape = gauged.problem.integrand, curve(path)
+    assert gauged.squared and isinstance(squared, Power)
+    places = (shape.breaks[:-1, None] + np.diff(shape.breaks)[:, None] * MIDDLES).ravel()
+    with np.errstate(all="ignore"):
+        return positive(np.asarray(_along(squared.base, gauged.problem, shape, path, places)))
+
+
+def _along(tree: Node, problem: Problem, shape: Curve, path: Trajectory, places: Array) -> Array:
+    """A formula at places of a curve."""
+    numbers = {c.name: c.value for c in problem.constants}
+    numbers |= {p.name: float(value) for p, value in zip(problem.parameters, path.parameters, strict=True)}
+    abbreviations = dict(problem.where)
+
+    def look_up(name: str, order: int) -> Array | float:
+        if name in numbers:
+            return numbers[name]
+        if name in abbreviations:
+            return np.asarray(evaluate(abbreviations[name], look_up, ARRAYS))
+        return places if name == problem.independent else shape.evaluate(name + "'" * order, places)
+
+    return np.asarray(evaluate(tree, look_up, ARRAYS))

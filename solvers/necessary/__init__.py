@@ -1,0 +1,1 @@
+"""What an extremum must satisfy, in symbols."""

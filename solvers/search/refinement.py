@@ -1,0 +1,213 @@
+"""From a solved mesh to its error and to a better mesh: degree where the curve is smooth, width where it is not.
+
+On every interval the Legendre coefficients of states and controls are looked at: where they fall fast a higher degree
+finishes the job, where they do not the interval is cut near the place where the curve bends most.  Reference for the
+idea: Mavriplis (1994), Adaptive mesh strategies for the spectral element method, Computer Methods in Applied Mechanics
+and Engineering 116 (from memory).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+from itertools import pairwise
+
+import numpy as np
+from numpy.polynomial import legendre
+from numpy.typing import NDArray
+
+from solvers.transcription.collocation import Family
+from solvers.transcription.evaluation import mapped
+from solvers.transcription.functions import linear_controls
+from solvers.transcription.limits import constants_of, interval_of, quantity_bounds
+from solvers.transcription.mesh import Interval, Mesh, interval
+from solvers.transcription.trajectory import Trajectory, sizes_of
+
+Array = NDArray[np.float64]
+
+HIGHEST_DEGREE = 10
+SMOOTH = 0.45
+"""Least fall per degree, in powers of ten, of the coefficients of a curve that counts as smooth."""
+NARROWEST = 1e-11
+"""Least width of an interval, relative to the whole."""
+END_DEGREE = 6
+"""Least degree beside such a cut: beyond it the curve is smooth."""
+END_CUT = 0.12
+"""Where an interval is cut whose trouble sits at one of its ends."""
+
+
+@dataclass(frozen=True, slots=True)
+class Estimate:
+    """Per interval: `errors` relative to each quantity's size, and the coefficients that tell the `shape` of the worst
+    quantity and of the one that shows best where the curve `bends`.
+    """
+
+    errors: Array
+    shapes: tuple[Array, ...]
+    bends: tuple[Array, ...]
+
+    @property
+    def worst(self) -> float:
+        """The largest error of the mesh."""
+        return float(self.errors.max())
+
+
+def estimate(path: Trajectory) -> Estimate:
+    """Local errors of a solved mesh.
+
+    Controls in which all is linear are left out, as along a singular arc they are determined only through the states;
+    but where they are kept calm, what they are allowed must be enough for them.
+    """
+    lowered = path.program.compiled.lowered
+    loose = linear_controls(path.program.compiled)
+    calm = {(c.stretch, lowered.controls.index((c.name, c.order))) for c in lowered.problem.calm}
+    mesh = path.program.mesh
+    weights = np.minimum(1.0, np.diff(path.breaks) / (path.breaks[-1] - path.breaks[0]))
+    scales = path.program.scales
+    state_sizes, control_sizes = sizes_of(path.states, scales.states), sizes_of(path.controls, scales.controls)
+    errors = np.zeros(len(mesh.intervals))
+    shapes, bends = [], []
+    for k, (states, controls) in enumerate(zip(path.state_modes(), path.control_modes(), strict=True)):
+        columns = states / state_sizes
+        error, worst = _tail(columns)
+        shape = bend = columns[:, worst] if columns.shape[1] else np.zeros(1)
+        scaled = controls / control_sizes * weights[k]
+        kept = [index for index in loose if (mesh.intervals[k].stretch, index) in calm]
+        if kept:
+            error = max(error, _tail(scaled[: (len(scaled) + 1) // 2, kept])[0])
+        scaled[:, loose] = 0.0
+        control_error, control_worst = _tail(scaled)
+        if scaled.shape[1]:
+            bend = scaled[:, control_worst]
+        if control_error > error:
+            error, shape = control_error, bend
+        errors[k] = error
+        shapes.append(shape)
+        bends.append(bend)
+    _add_excess(path, errors)
+    return Estimate(errors, tuple(shapes), tuple(bends))
+
+
+BETWEEN = np.linspace(-1.0, 1.0, 15)
+"""Places, in the local variable, at which limits are looked at between the points."""
+
+
+def _add_excess(path: Trajectory, errors: Array) -> None:
+    """Count as an error how far states leave their bounds, and constraints their limits, between the points."""
+    compiled = path.program.compiled
+    lower, upper, _, _ = quantity_bounds(compiled)
+    bounded = np.isfinite(lower) | np.isfinite(upper)
+    limits = np.array([interval_of(c, constants_of(compiled)) for c in compiled.pointwise]).reshape(-1, 2)
+    unequal = limits[:, 0] < limits[:, 1]
+    if not bounded.any() and not unequal.any():
+        return
+    states = np.stack([legendre.legvander(BETWEEN, len(modes) - 1) @ modes for modes in path.state_modes()])
+    excess = (
+        np.maximum(lower - states, states - upper)[:, :, bounded]
+        / sizes_of(path.states, path.program.scales.states)[bounded]
+    )
+    errors[:] = np.maximum(errors, excess.max(axis=(1, 2), initial=0.0))
+    if unequal.any():
+        bodies = _bodies_between(path, states)[:, :, unequal]
+        sizes = path.program.row_scale[path.program.rows.pointwise :][: len(limits)][unequal]
+        excess = np.maximum(limits[unequal, 0] - bodies, bodies - limits[unequal, 1]) / sizes
+        errors[:] = np.maximum(errors, np.nan_to_num(excess).max(axis=(1, 2), initial=0.0))
+
+
+def _bodies_between(path: Trajectory, states: Array) -> Array:
+    """Bodies of the pointwise constraints at `BETWEEN` in every interval (N x len(BETWEEN) x constraints)."""
+    mesh, compiled = path.program.mesh, path.program.compiled
+    lower, upper = quantity_bounds(compiled)[2:]
+    controls = np.stack([legendre.legvander(BETWEEN, len(modes) - 1) @ modes for modes in path.control_modes()])
+    shape = (*states.shape[:2], 1)
+    starts = np.array([path.places[i.stretch] for i in mesh.intervals])[:, None, None]
+    ends = np.array([path.places[i.stretch + 1] for i in mesh.intervals])[:, None, None]
+    fractions = np.array([i.start + i.width * (BETWEEN + 1) / 2 for i in mesh.intervals])[:, :, None]
+    parameters = np.broadcast_to(path.parameters, (*shape[:2], len(path.parameters)))
+    constants = np.broadcast_to(np.array(compiled.constants), (*shape[:2], len(compiled.constants)))
+    v = np.concatenate([states, np.clip(controls, lower, upper), np.broadcast_to(starts, shape),
+                        np.broadcast_to(ends, shape), parameters], axis=2)  # fmt: skip
+    d = np.concatenate([fractions, constants], axis=2)
+    count = shape[0] * shape[1]
+    outputs = mapped(compiled.point.value, v.reshape(count, -1), d.reshape(count, -1))
+    first = compiled.point.states
+    return outputs[:, first : first + compiled.point.constraints].reshape(*shape[:2], -1)
+
+
+def _tail(columns: Array) -> tuple[float, int]:
+    """The largest last coefficients, and the column that has them."""
+    if columns.shape[1] == 0:
+        return 0.0, 0
+    last = np.abs(columns[-1])
+    if len(columns) > 2:
+        last = np.maximum(last, 0.1 * np.abs(columns[-2]))
+    worst = int(np.argmax(last))
+    return float(last[worst]), worst
+
+
+def _fall(modes: Array) -> float:
+    """How fast coefficients fall, in powers of ten per degree: the slope of a line through their envelope."""
+    envelope = np.log10(np.maximum(np.maximum.accumulate(np.abs(modes)[::-1])[::-1], 1e-300))[1:]
+    if len(envelope) < 2:
+        return 0.0
+    offsets = np.arange(len(envelope)) - (len(envelope) - 1) / 2
+    return -float(offsets @ envelope / (offsets @ offsets))
+
+
+def _bend(modes: Array) -> float:
+    """Where in the interval (0 to 1) the function bends most."""
+    order = 2 if len(modes) > 3 else 1
+    if len(modes) <= order:
+        return 0.5
+    grid = np.linspace(-1.0, 1.0, 41)
+    return float((grid[int(np.argmax(np.abs(legendre.legval(grid, legendre.legder(modes, order)))))] + 1) / 2)
+
+
+def refine(path: Trajectory, found: Estimate, tolerance: float) -> Mesh:
+    """A better mesh for a local tolerance."""
+    mesh = path.program.mesh
+    span = abs(path.breaks[-1] - path.breaks[0])
+    pieces: list[Interval] = []
+    for k, old in enumerate(mesh.intervals):
+        width = abs(path.breaks[k + 1] - path.breaks[k]) / span
+        pieces.extend(_replace(old, found, k, tolerance, width))
+    return Mesh(tuple(pieces))
+
+
+def _replace(old: Interval, found: Estimate, k: int, tolerance: float, width: float) -> Iterator[Interval]:
+    family, degree = old.scheme.family, old.scheme.degree
+    start, end = old.start, old.start + old.width
+    if found.errors[k] <= tolerance:
+        yield old
+        return
+    fall = max(_fall(found.shapes[k]), 1e-3)
+    missing = np.log10(found.errors[k] / tolerance)
+    wanted = degree + max(1, int(np.ceil(missing / fall)))
+    if fall >= SMOOTH and wanted <= HIGHEST_DEGREE:
+        yield interval(old.stretch, start, end, family, wanted)
+        return
+    if width < NARROWEST:
+        yield old
+        return
+    if fall >= SMOOTH:  # smooth but far from resolved: halves of a higher degree
+        cuts = [0.5]
+    else:
+        bend = _bend(found.bends[k])
+        if bend < END_CUT:
+            cuts = [END_CUT]
+        elif bend > 1 - END_CUT:
+            cuts = [1 - END_CUT]
+        else:
+            cuts = [max(bend - 0.15, bend / 2), min(bend + 0.15, (1 + bend) / 2)]
+    edges = [start, *(start + cut * old.width for cut in cuts), end]
+    at_end = len(cuts) == 1 and fall < SMOOTH
+    degree = max(degree, END_DEGREE if at_end else 5) if at_end or fall >= SMOOTH else degree
+    for left, right in pairwise(edges):
+        touching = (left == start and old.start == 0.0) or (right == end)
+        yield interval(old.stretch, left, right, family if touching else Family.RADAU, degree)
+
+
+def finer(mesh: Mesh) -> Mesh:
+    """The same mesh with every degree raised, to see what is left to gain."""
+    return Mesh(tuple(interval(i.stretch, i.start, i.start + i.width, i.scheme.family, i.scheme.degree + 2)
+                      for i in mesh.intervals))  # fmt: skip

@@ -1,0 +1,130 @@
+"""Bang-bang and singular problems sharpened: switches read off a softened solve, made unknown, solved again."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+from solvers.deadline import Deadline
+from solvers.problem import Problem
+from solvers.search.chatter import one_more
+from solvers.search.pursuit import End, Pursuit, go_on, pursue
+from solvers.search.structure import SWITCH, held_rightly, present_switches, signals, softened, switches, with_switches
+from solvers.solution import Watch
+from solvers.transcription.collocation import Family
+from solvers.transcription.functions import linear_controls
+from solvers.transcription.mesh import Interval, Mesh, interval
+from solvers.transcription.trajectory import Trajectory
+
+SOFTNESS = (1e-3, 1e-5)
+"""Weights of the softened problems that are tried in turn."""
+ROUNDS = 3
+"""How often the structure is read again off a sharpened path."""
+MOST_CHATTER = 5
+"""So many switches are added where a control chatters: each counts about a thousandth of the one before."""
+AGREEMENT = 1e-2
+"""How far the value may move when the structure is made exact, relative to its size."""
+
+
+def sharpen(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit | None:
+    """A pursuit of the same problem with its switches as unknowns; None where there are none or that leads nowhere."""
+    path = base.paths[-1]
+    if not signals(path):
+        return None
+    found = []
+    for seen in _calmed(base, watch, deadline):
+        sharp = _with_structure(base, seen, watch, deadline)
+        if sharp is not None and sharp.end is End.CONVERGED:
+            return sharp
+        if sharp is not None:
+            found.append(sharp)
+    for sharp in sorted(found, key=lambda pursuit: pursuit.value_error)[:1]:
+        for _ in range(ROUNDS):
+            again = _with_structure(base, sharp.paths[-1], watch, deadline)
+            if again is None or again.value_error > sharp.value_error:
+                break
+            sharp = again
+            if sharp.end is End.CONVERGED:
+                break
+        return _with_more_switches(base, sharp, watch, deadline)
+    return None
+
+
+def _calmed(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Iterator[Trajectory]:
+    """Paths to read the structure off: softened ones where controls act linearly, else the plain one."""
+    path = base.paths[-1]
+    linear = linear_controls(base.compiled)
+    if not linear:
+        yield path
+    for softness in SOFTNESS if linear else ():
+        soft = softened(path, linear, softness)
+        calm = pursue(soft, watch, deadline, meshes=3, start=path, mesh=path.program.mesh)
+        if calm.solved:
+            yield calm.paths[-1]
+
+
+def _with_structure(base: Pursuit, path: Trajectory, watch: Watch | None, deadline: Deadline) -> Pursuit | None:
+    """Read switches off a path and solve with them; None where there are none or the answer is not believable.
+
+    A switch that ends at the edge of the room it was given is looked at again from there.
+    """
+    linear = [base.compiled.lowered.controls[index] for index in linear_controls(base.compiled)]
+    for _ in range(ROUNDS):
+        found = sorted([*switches(path), *present_switches(path)], key=lambda switch: switch.place)
+        changed = with_switches(base.problem, found, path, linear)
+        if changed is None:
+            return None
+        pursuit = pursue(changed, watch, deadline, meshes=2, start=path, mesh=_mesh(changed))
+        if not pursuit.solved:
+            return None
+        path = pursuit.paths[-1]
+        if not _at_the_edge(path):
+            if not _agrees(pursuit, base) or not held_rightly(path):
+                return None
+            return pursuit if pursuit.end is End.CONVERGED else go_on(pursuit, watch, deadline, 4)
+    return None
+
+
+def _with_more_switches(base: Pursuit, sharp: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit:
+    """Where the control chatters, the same with so many switches that those after them do not count any more."""
+    for _ in range(MOST_CHATTER):
+        if sharp.end is End.CONVERGED or deadline.over or sharp.value_met_before:
+            break
+        path = sharp.paths[-1]
+        changed = one_more(path)
+        if changed is None:
+            break
+        pursuit = pursue(changed, watch, deadline, meshes=2, start=path, mesh=_mesh(changed))
+        if not pursuit.solved or _at_the_edge(pursuit.paths[-1]) or not _agrees(pursuit, base):
+            break
+        pursuit = go_on(pursuit, watch, deadline, 4)
+        if pursuit.value_error > sharp.value_error:
+            break
+        sharp = pursuit
+    return sharp
+
+
+def _at_the_edge(path: Trajectory) -> bool:
+    """Whether any switch has run into a neighbour's room."""
+    return any(
+        parameter.name.startswith(SWITCH + " ")
+        and min(value - parameter.lower, parameter.upper - value) < 1e-4 * (parameter.upper - parameter.lower)
+        for parameter, value in zip(path.program.compiled.lowered.problem.parameters, path.parameters, strict=True)
+    )
+
+
+def _mesh(problem: Problem) -> Mesh:
+    """Few intervals where everything is held, more where a control is free."""
+    pieces: list[Interval] = []
+    held = {h.stretch for h in problem.held}
+    last = len(problem.places) - 2
+    for stretch in range(last + 1):
+        count, degree = (2, 5) if stretch in held else (4, 6)
+        for k in range(count):
+            family = Family.GAUSS if stretch == last and k == count - 1 else Family.RADAU
+            pieces.append(interval(stretch, k / count, (k + 1) / count, family, degree))
+    return Mesh(tuple(pieces))
+
+
+def _agrees(found: Pursuit, base: Pursuit) -> bool:
+    """Whether the sharpened value is the one that the plain meshes tend to."""
+    return abs(found.paths[-1].value - base.paths[-1].value) <= AGREEMENT * base.value_size

@@ -1,0 +1,351 @@
+"""Switches: where a limit begins or ceases to bind, found on a solved mesh and made unknown places of the problem.
+
+A control that jumps from one bound to the other, a singular arc, a state that comes to lie on its limit: at the place
+where it happens the curve has a corner, and no polynomial across it converges.  With the place itself as an unknown
+(a junction of the mesh) all pieces are smooth again and few intervals of high degree suffice.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+from itertools import pairwise
+
+import numpy as np
+from numpy.typing import NDArray
+
+from solvers.formula.nodes import Name, Node, Number, Power, Product, Sum
+from solvers.problem import Calm, Held, Parameter, Place, Problem, Touch
+from solvers.transcription.limits import quantity_bounds
+from solvers.transcription.lowering import Quantity
+from solvers.transcription.trajectory import Trajectory
+
+Array = NDArray[np.float64]
+Indices = NDArray[np.int64]
+
+MOST_SWITCHES = 16
+ON_LIMIT = 1e-3
+"""How near to a limit, relative to the room it leaves, a control counts as on it."""
+TOUCH = 0.02
+"""How short, relative to the whole, a stay of a state on its limit counts as a touch."""
+COLLAPSED = 3e-3
+"""Width, relative to the whole, of a stretch that is about to vanish."""
+STATE_ON_LIMIT = 1e-4
+"""The same for a state, which may come near to its limit without resting on it."""
+
+
+@dataclass(frozen=True, slots=True)
+class Switch:
+    """A switch at `place`, which lies between `low` and `high` for certain; or a touch of the `touching` state."""
+
+    place: float
+    low: float
+    high: float
+    touching: tuple[Quantity, int] | None = None  # with the side that is touched
+    of: frozenset[str] = frozenset()  # the unknowns that switch there, where that is known
+
+
+@dataclass(frozen=True, slots=True)
+class Signal:
+    """A control or state with limits, by its values at the points; it switches where it meets or leaves a limit."""
+
+    quantity: Quantity
+    values: Array
+    lower: float
+    upper: float
+    state: bool
+
+    @property
+    def labels(self) -> Indices:
+        """-1 on the lower limit, 1 on the upper one, 0 between them, at every point."""
+        room = self.upper - self.lower
+        if not np.isfinite(room):
+            room = max(float(np.ptp(self.values)), 1e-300)
+        near = room * (STATE_ON_LIMIT if self.state else ON_LIMIT)
+        labels = np.zeros(len(self.values), dtype=np.int64)
+        labels[self.values - self.lower < near] = -1
+        labels[self.upper - self.values < near] = 1
+        return labels
+
+
+def signals(path: Trajectory) -> list[Signal]:
+    """All controls and states of a path that have limits and lie on one of them somewhere."""
+    lowered = path.program.compiled.lowered
+    state_lower, state_upper, control_lower, control_upper = quantity_bounds(path.program.compiled)
+    found = []
+    for quantities, table, lowers, uppers, state in (
+        (lowered.controls, path.controls, control_lower, control_upper, False),
+        (lowered.states, path.states, state_lower, state_upper, True),
+    ):
+        for index, quantity in enumerate(quantities):
+            signal = Signal(quantity, table[:, index], float(lowers[index]), float(uppers[index]), state)
+            if signal.labels.any():
+                found.append(signal)
+    return found
+
+
+def switches(path: Trajectory) -> list[Switch]:
+    """The switches of a solved mesh, in order; none where there are too many to be a structure."""
+    found = [switch for signal in signals(path) for switch in _changes(path, signal)]
+    merged = _merged(sorted(found, key=lambda switch: switch.place), path)
+    return merged if len(merged) <= MOST_SWITCHES else []
+
+
+def _changes(path: Trajectory, signal: Signal) -> list[Switch]:
+    """Places where the label of a signal changes.
+
+    A short passage of a control between two limits is one switch; a state that is at its limit for a point or two only
+    touches it there.
+    """
+    states = path.program.compiled.lowered.states
+    smooth = signal.state and (signal.quantity[0], signal.quantity[1] + 1) in states
+    labels, points, where = signal.labels, path.points, path.program.layout
+    span = float(np.ptp(path.places))
+    owner = np.repeat(np.arange(len(where.first) - 1), np.diff(where.first))
+    kept: list[tuple[int, int]] = []
+    found = []
+    for first, last in _runs(labels):
+        inner = first > 0 and last < len(labels) - 1
+        short = owner[last] - owner[first] <= 1
+        if inner and short and labels[first] == 0 and labels[first - 1] != labels[last + 1]:
+            continue
+        brief = last - first < 2 or points[last] - points[first] < TOUCH * span
+        if signal.state and labels[first] != 0 and brief:
+            if inner and smooth:
+                middle = float(points[first] + points[last]) / 2
+                touching = (signal.quantity, int(labels[first]))
+                found.append(Switch(middle, float(points[first - 1]), float(points[last + 1]), touching))
+            continue
+        kept.append((first, last))
+    for before, after in pairwise(kept):
+        left, right = before[1], after[0]
+        if labels[left] == labels[right]:
+            continue
+        low, high = float(points[left]), float(points[right])
+        place = (low + high) / 2
+        if labels[left] * labels[right] == -1:
+            start, end = int(owner[left]), int(owner[right])
+            low, high = float(path.breaks[start]), float(path.breaks[end + 1])
+            place = _clean_jump(path, signal, slice(where.first[start], where.first[end + 1]), low, high, labels[left])
+        found.append(Switch(place, low, high))
+    return found
+
+
+def _runs(labels: Indices) -> list[tuple[int, int]]:
+    """First and last index of every run of equal labels."""
+    starts = np.concatenate([[0], np.flatnonzero(np.diff(labels)) + 1])
+    ends = np.concatenate([starts[1:] - 1, [len(labels) - 1]])
+    return [(int(first), int(last)) for first, last in zip(starts, ends, strict=True)]
+
+
+def _clean_jump(path: Trajectory, signal: Signal, inside: slice, low: float, high: float, side: int) -> float:
+    """Where a clean jump from one limit to the other has the same integral between `low` and `high`."""
+    where = path.program.layout
+    total = float((where.measures * where.lengths(path.places))[inside] @ signal.values[inside])
+    first, second = (signal.lower, signal.upper) if side < 0 else (signal.upper, signal.lower)
+    return float(np.clip((total - second * high + first * low) / (first - second), low, high))
+
+
+def _merged(found: list[Switch], path: Trajectory) -> list[Switch]:
+    """Switches of several quantities at one place as one; those at a place that is there already as none."""
+    span = float(np.ptp(path.places))
+    widths = np.diff(path.breaks)
+    groups: list[list[Switch]] = []
+    for switch in found:
+        if switch.touching is not None or np.abs(path.places - switch.place).min() < 1e-3 * span:
+            continue
+        width = float(widths[np.clip(np.searchsorted(path.breaks, switch.place) - 1, 0, len(widths) - 1)])
+        if groups and switch.place - groups[-1][-1].place < min(width, 0.05 * span):
+            groups[-1].append(switch)
+        else:
+            groups.append([switch])
+    merged = [
+        Switch(float(np.mean([s.place for s in group])), min(s.low for s in group), max(s.high for s in group))
+        for group in groups
+    ]
+    for touch in (switch for switch in found if switch.touching is not None):
+        taken = np.array([*path.places, *(switch.place for switch in merged)])
+        if np.abs(taken - touch.place).min() > 5e-3 * span:
+            merged.append(touch)
+    return sorted(merged, key=lambda switch: switch.place)
+
+
+def with_switches(problem: Problem, found: list[Switch], path: Trajectory, linear: list[Quantity]) -> Problem | None:
+    """The problem with its switches as free places, each between its neighbours, and with its bang arcs held.
+
+    `linear` are the controls that act linearly; they are calm where they are free.
+
+    A switch on both sides of which the same controls are held on the same limits is none; None where none is left.
+    """
+    own = _own_places(problem, path)
+    kept = _without_collapsed(found, COLLAPSED * float(np.ptp(path.places)))
+    while True:
+        spots: list[Spot] = sorted([*own, *((switch.place, switch) for switch in kept)], key=lambda spot: spot[0])
+        held = _held(path, np.array([place for place, _ in spots]))
+        simpler = _without_contradiction(kept, spots, held)
+        if simpler is None:
+            simpler = _without_needless(kept, spots, held)
+        if simpler is None:
+            break
+        kept = simpler
+    if not kept:
+        return None
+    places: list[Place] = []
+    parameters: list[Parameter] = []
+    touches = []
+    for index, (at, place) in enumerate(spots):
+        if isinstance(place, Switch):
+            name = f"{SWITCH} {len(parameters) + 1}"
+            if place.touching is not None:
+                touches.append(Touch(name, *place.touching[0], place.touching[1]))
+            low, high = spots[index - 1][0], spots[index + 1][0]
+            parameters.append(Parameter(name, at - 0.45 * (at - low), at + 0.45 * (high - at), at))
+            places.append(Place(Name(name), name))
+        else:
+            places.append(place)
+    calm = _calm(linear, len(places) - 1, held)
+    parameters = [*problem.parameters, *parameters]
+    return replace(problem, places=tuple(places), parameters=tuple(parameters), held=held, calm=calm,
+                   touches=tuple(touches))  # fmt: skip
+
+
+def _without_collapsed(found: list[Switch], width: float) -> list[Switch]:
+    """Two switches with next to nothing between them as one."""
+    kept: list[Switch] = []
+    for switch in found:
+        if kept and switch.place - kept[-1].place < width:
+            low, high = kept[-1].place, switch.place
+            kept[-1] = Switch((low + high) / 2, low, high, kept[-1].touching or switch.touching)
+        else:
+            kept.append(switch)
+    return kept
+
+
+def _without_contradiction(kept: list[Switch], spots: list[Spot], held: tuple[Held, ...]) -> list[Switch] | None:
+    """Fewer switches where a stretch holds an unknown and a derivative of it, whose ends are one switch seen twice."""
+    for stretch in range(len(spots) - 1):
+        orders: dict[str, int] = {}
+        for h in held:
+            if h.stretch == stretch:
+                orders[h.name] = orders.get(h.name, 0) + 1
+        if max(orders.values(), default=0) < 2:
+            continue
+        ends = [spots[stretch], spots[stretch + 1]]
+        inner = [at for at, place in ends if isinstance(place, Switch)]
+        rest = [switch for switch in kept if switch.place not in inner]
+        if len(inner) == 2:
+            low, high = inner
+            rest = sorted([*rest, Switch((low + high) / 2, low, high)], key=lambda switch: switch.place)
+        return rest
+    return None
+
+
+def _without_needless(kept: list[Switch], spots: list[Spot], held: tuple[Held, ...]) -> list[Switch] | None:
+    """Fewer switches where one has the same on both sides."""
+    for index, (at, place) in enumerate(spots):
+        if isinstance(place, Switch) and place.touching is None and _on(held, index - 1) == _on(held, index):
+            return [switch for switch in kept if switch.place != at]
+    return None
+
+
+SWITCH = "switch"
+
+
+Spot = tuple[float, Place | Switch]
+"""A value of the independent variable, and what is there."""
+
+
+def _own_places(problem: Problem, path: Trajectory) -> list[Spot]:
+    """The places of the problem itself with their values on a path that may have switches besides."""
+    own = path.program.compiled.lowered.problem.places
+    values = [float(v) for v, place in zip(path.places, own, strict=True) if not place.label.startswith(SWITCH + " ")]
+    return list(zip(values, problem.places, strict=True))
+
+
+def present_switches(path: Trajectory) -> list[Switch]:
+    """The switches that are places of a path already."""
+    problem = path.program.compiled.lowered.problem
+    touches = {touch.place: ((touch.name, touch.order), touch.side) for touch in problem.touches}
+    found = []
+    for index, place in enumerate(problem.places):
+        if not place.label.startswith(SWITCH + " "):
+            continue
+        at, touching = float(path.places[index]), touches.get(place.label)
+        changed = _on(problem.held, index - 1) ^ _on(problem.held, index)
+        names = {name for name, _, _ in changed} | ({touching[0][0]} if touching else set())
+        found.append(Switch(at, at, at, touching, frozenset(names)))
+    return found
+
+
+def _on(held: tuple[Held, ...], stretch: int) -> set[tuple[str, int, int]]:
+    return {(h.name, h.order, h.side) for h in held if h.stretch == stretch}
+
+
+def _held(path: Trajectory, places: Array) -> tuple[Held, ...]:
+    """What stays on a limit along which stretch; never more than there are controls, controls before states."""
+    room = len(path.program.compiled.lowered.controls)
+    found: list[Held] = []
+    for stretch, (start, end) in enumerate(pairwise(places)):
+        margin = 0.15 * (end - start)
+        inside = (path.points > start + margin) & (path.points < end - margin)
+        here = [
+            Held(stretch, *signal.quantity, side)
+            for signal in signals(path)
+            for side in (-1, 1)
+            if inside.any() and np.mean(signal.labels[inside] == side) > 0.8
+        ]
+        found += here[:room] if len({held.name for held in here}) > 1 else here
+    return tuple(found)
+
+
+def _calm(linear: list[Quantity], stretches: int, held: tuple[Held, ...]) -> tuple[Calm, ...]:
+    """The linear controls along the stretches where nothing is held: they run singular there."""
+    return tuple(
+        Calm(stretch, *quantity) for quantity in linear for stretch in range(stretches) if not _on(held, stretch)
+    )
+
+
+def softened(path: Trajectory, chosen: list[int], softness: float) -> Problem:
+    """The problem with a weight, relative to the value's size, on the squares of controls: it calms singular arcs."""
+    compiled = path.program.compiled
+    problem = compiled.lowered.problem
+    span = float(np.ptp(path.places))
+    size = abs(path.program.value_scale) / span * softness
+    terms: list[Node] = [] if problem.integrand is None else [problem.integrand]
+    sign = -1.0 if path.program.value_scale < 0 else 1.0
+    for index in chosen:
+        name, order = compiled.lowered.controls[index]
+        largest = float(np.abs(path.controls[:, index]).max()) or 1.0
+        weight = Number(sign * size / largest**2, "")
+        terms.append(Product((weight, Power(Name(name, order), Number(2.0, "2"))), (False, False)))
+    integrand = terms[0] if len(terms) == 1 else Sum(tuple(terms), (False,) * len(terms))
+    return replace(problem, integrand=integrand)
+
+
+WRONG = 0.2
+"""How far, relative to the largest on its arc, the slope of the value may point away from the limit that is held."""
+
+
+def held_rightly(path: Trajectory) -> bool:
+    """Whether leaving any held limit would make the value worse: the slope of the Lagrangian has the right sign.
+
+    For a control at every point of its arc, but for what discretisation blurs near its ends; for a state, whose
+    multiplier may be spread in many ways, in the sum.
+    """
+    program = path.program
+    where, problem = program.layout, program.compiled.lowered.problem
+    slopes = -path.bound_multipliers * program.scale / abs(program.value_scale)
+    lowered = program.compiled.lowered
+    resting = [signal for signal in signals(path) if signal.state]
+    for held in problem.held:
+        quantity = (held.name, held.order)
+        inside = where.stretch == held.stretch
+        if any(signal.quantity != quantity and signal.labels[inside].all() for signal in resting):
+            continue  # a state rests on its limit besides: the multipliers are not unique
+        if quantity in lowered.controls:
+            outward = -held.side * slopes[where.controls[inside, lowered.controls.index(quantity)]]
+            outward = outward / where.measures[inside]
+            if outward.min(initial=0.0) < -WRONG * np.abs(outward).max(initial=0.0):
+                return False
+        elif -held.side * slopes[where.inner[inside, lowered.states.index(quantity)]].sum() < 0:
+            return False
+    return True

@@ -1,0 +1,1 @@
+"""Where a search starts, and what different starts lead to."""

@@ -1,0 +1,205 @@
+"""Several starts of one problem, and the distinct extremals that they lead to.
+
+Two starts have led to the same extremal where values and curves agree within their errors: the value alone would take
+an elastica that bends to the left for the one that bends to the right.  The distance of two curves is the mean square
+of their difference over the whole range, in which an unknown counts relative to its size.
+
+The starts are made one after the other, in the run's own process: its limits of time and memory, its soft stop and its
+kill then hold for all of them together, and no run takes the place of others that wait.
+"""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from solvers.curve import Curve
+from solvers.problem import Problem, Seek
+from solvers.solution import Check, Extremal, Progress, Solution, Status, Verdict, Watch
+from solvers.starts.variations import variations
+
+NAME = "other starts"
+
+ALIKE = 1e-3
+"""Least distance of curves, relative to their size, that makes two of them."""
+
+PLACES = 401
+
+NEAR_ZERO = 1e-3
+"""An unknown never counts for smaller than this share of its typical size."""
+
+SOUND = frozenset({Verdict.GLOBAL_MINIMUM, Verdict.LOCAL_MINIMUM, Verdict.GLOBAL_MAXIMUM, Verdict.LOCAL_MAXIMUM,
+                   Verdict.STATIONARY})  # fmt: skip
+REFUTED = frozenset({Verdict.NOT_A_MINIMUM, Verdict.NOT_A_MAXIMUM})
+
+LOWERED = {Verdict.GLOBAL_MINIMUM: Verdict.LOCAL_MINIMUM, Verdict.GLOBAL_MAXIMUM: Verdict.LOCAL_MAXIMUM}
+"""What remains of a verdict that a better curve contradicts."""
+
+Array = NDArray[np.float64]
+Solver = Callable[[Problem, Watch | None], Solution]
+
+
+def solve_from_starts(problem: Problem, watch: Watch | None, solve_one: Solver, sizes: dict[str, float]) -> Solution:
+    """The best of what several starts lead to, with all that was found.
+
+    `solve_one` solves from one start, `sizes` are typical ones of the unknowns.  The first start may take all the time
+    there is: what it finds is found without the others too.
+    """
+    began = time.perf_counter()
+    planned = variations(problem, problem.options.starts)
+    hear = _Numbered(watch)
+    made: list[tuple[str, Solution]] = []
+    for number, variation in enumerate(planned):
+        left = problem.options.time_limit - (time.perf_counter() - began)
+        if number and (left <= 0 or hear.stopped):
+            break
+        share = left if number == 0 else min(left, 2 * left / (len(planned) - number))
+        options = replace(problem.options, time_limit=share, starts=1)
+        hear.next_start(number + 1)
+        made.append((variation.label, solve_one(replace(problem, start=variation, options=options), hear)))
+    return _together(problem, made, sizes, time.perf_counter() - began)
+
+
+class _Numbered:
+    """Passes signs of life on with the number of the start, and remembers that a stop was asked for."""
+
+    def __init__(self, watch: Watch | None) -> None:
+        self.watch, self.start, self.stopped = watch, 1, False
+        self._before, self._seen = (0, 0), (0, 0)
+
+    def next_start(self, number: int) -> None:
+        """Meshes and iterations are counted on from those of the starts before."""
+        self.start, self._before = number, self._seen
+
+    def __call__(self, progress: Progress) -> bool:
+        mesh, iteration = self._before[0] + progress.mesh, self._before[1] + progress.iteration
+        self._seen = max(self._seen[0], mesh), max(self._seen[1], iteration)
+        if self.watch is not None:
+            told = replace(progress, start=self.start, mesh=mesh, iteration=iteration)
+            self.stopped = self.watch(told) or self.stopped
+        return self.stopped
+
+
+def _together(
+    problem: Problem, made: Sequence[tuple[str, Solution]], sizes: dict[str, float], seconds: float
+) -> Solution:
+    """The best solution, told what the others are."""
+    curves = [(label, found) for label, found in made if found.value is not None and found.curve is not None]
+    first = made[0][1]
+    if not curves:
+        return replace(first, times={**first.times, "starts": seconds})
+    groups: list[list[tuple[str, Solution]]] = []
+    for label, found in curves:
+        group = next((g for g in groups if same(g[0][1], found, sizes, problem.options.tolerance)), None)
+        if group is None:
+            groups.append([(label, found)])
+        else:
+            group.append((label, found))
+    merit = _Merit(problem)
+    extremals = [Extremal(min((s for _, s in g), key=merit.rank), tuple(label for label, _ in g)) for g in groups]
+    extremals.sort(key=lambda extremal: merit.order(extremal.solution))
+    lost = len(made) - len(curves)
+    told = [merit.told(extremal, extremals, len(made), lost) for extremal in extremals]
+    best = told[0].solution
+    return replace(best, extremals=tuple(told), times={**best.times, "starts": seconds})
+
+
+@dataclass(frozen=True, slots=True)
+class _Merit:
+    """Which of two solutions of a problem is better."""
+
+    problem: Problem
+
+    @property
+    def sign(self) -> float:
+        return -1.0 if self.problem.seek is Seek.MAXIMUM else 1.0
+
+    def rank(self, solution: Solution) -> int:
+        """What its checks show comes before the value: a value that does not stand is no value."""
+        if solution.verdict in SOUND:
+            return 0
+        if solution.verdict in REFUTED:
+            return 1
+        return 2 if solution.verdict is Verdict.BEST_FOUND else 3
+
+    def order(self, solution: Solution) -> tuple[int, float]:
+        """The sorting key, best first; among points that are only stationary, the earlier start first."""
+        value = 0.0 if self.problem.seek is Seek.STATIONARY else self.sign * (solution.value or 0.0)
+        return self.rank(solution), value
+
+    def told(self, extremal: Extremal, every: Sequence[Extremal], starts: int, lost: int) -> Extremal:
+        """The extremal with the check that compares it with the others."""
+        solution = extremal.solution
+        check = self._check(extremal, every, starts, lost)
+        verdict = solution.verdict
+        if check.status is Status.FAILED and verdict is not None:
+            verdict = LOWERED.get(verdict, verdict)
+        return replace(extremal, solution=replace(solution, verdict=verdict, checks=(*solution.checks, check)))
+
+    def _check(self, extremal: Extremal, every: Sequence[Extremal], starts: int, lost: int) -> Check:
+        others = [other for other in every if other is not extremal]
+        found = f"{starts} starts led to {len(every)} curve{'s' if len(every) > 1 else ''}"
+        listed = "; ".join(self._line(other) for other in others[:5]) + ("; and more" if len(others) > 5 else "")
+        sentence = f"{found}: {len(extremal.starts)} to this one{', the others to ' + listed if others else ''}."
+        if lost:
+            sentence += f" {lost} led nowhere."
+        if self.problem.options.starts > starts:
+            sentence += f" {self.problem.options.starts - starts} of those asked for were not tried."
+        feasible = [o for o in others if self.rank(o.solution) < 3]
+        if self.problem.seek is Seek.STATIONARY or starts == 1:
+            return Check(NAME, Status.NOT_APPLICABLE, sentence)
+        own = extremal.solution
+        size = max(abs(own.value or 0.0), 1e-300)
+        threshold = self.problem.options.tolerance
+        figure = 0.0
+        for other in (o.solution for o in feasible):
+            better = self.sign * ((own.value or 0.0) - (other.value or 0.0))
+            better -= (own.value_error or 0.0) + (other.value_error or 0.0)
+            figure = max(figure, better / size)
+        if figure > threshold:
+            return Check(NAME, Status.FAILED, f"Another start led to a better value. {sentence}", figure, threshold)
+        return Check(NAME, Status.PASSED, sentence, figure, threshold)
+
+    def _line(self, extremal: Extremal) -> str:
+        solution, unit = extremal.solution, self.problem.value_unit
+        verdict = solution.verdict.value if solution.verdict else "no verdict"
+        value = f"{(solution.value or 0.0) / unit.factor:.7g}" + (f" {unit.text}" if unit.text else "")
+        count = len(extremal.starts)
+        return f"the value {value} ({verdict}, {count} start{'s' if count > 1 else ''})"
+
+
+def same(first: Solution, second: Solution, sizes: dict[str, float], tolerance: float) -> bool:
+    """Whether two solutions are the same extremal, to their errors."""
+    assert first.value is not None and second.value is not None and first.curve is not None and second.curve is not None
+    errors = sum(e if e is not None else 0.01 * abs(first.value) for e in (first.value_error, second.value_error))
+    if abs(first.value - second.value) > 2 * errors + tolerance * max(abs(first.value), abs(second.value)):
+        return False
+    blur = 10 * max(tolerance, first.curve_error or 0.0, second.curve_error or 0.0)
+    return distance(first.curve, second.curve, sizes) <= max(ALIKE, min(blur, 0.1))
+
+
+def distance(first: Curve, second: Curve, sizes: dict[str, float]) -> float:
+    """The largest root mean square difference of an unknown, relative to its size; places go by shares of the range.
+
+    Controls are left out where there are states: they may be undetermined where they do not matter.
+    """
+    shares = np.linspace(0.0, 1.0, PLACES)
+    ways = [curve.breaks[0] + shares * (curve.breaks[-1] - curve.breaks[0]) for curve in (first, second)]
+    lengths = [float(np.ptp(curve.breaks)) for curve in (first, second)]
+    shifts = np.abs(first.breaks[[0, -1]] - second.breaks[[0, -1]])
+    found = [float(shifts.max()) / max(lengths)]
+    names = [name for name in first.functions if not name.endswith("'") and name in second.functions]
+    states = [name for name in names if f"{name}'" in first.functions]
+    for name in states or names:
+        one, other = first.evaluate(name, ways[0]), second.evaluate(name, ways[1])
+        size = max(_size(one), _size(other), NEAR_ZERO * sizes.get(name, 0.0))
+        found.append(_size(one - other) / size if size else 0.0)
+    return max(found)
+
+
+def _size(values: Array) -> float:
+    return float(np.sqrt(np.mean(values**2)))

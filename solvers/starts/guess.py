@@ -1,0 +1,174 @@
+"""The first guess: straight lines through what is known, bent where that satisfies more of the problem.
+
+A line is all that the endpoint conditions say.  Where it is undefined (an integrand that is infinite on it) or breaks a
+constraint or an integral condition (a hose longer than the distance), a bend of low order is added to the unknowns,
+with the sign and the size that violate least.  Parameters of unknown size get the power of ten at which the dynamics
+fit the lines best.  What the user gives as a guess is kept as it is.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from solvers.problem import Parameter, Problem
+from solvers.starts.sketch import Bend, sketch
+from solvers.transcription.evaluation import end_outputs, point_outputs
+from solvers.transcription.functions import Compiled
+from solvers.transcription.layout import Layout
+from solvers.transcription.limits import constants_of, interval_of, number
+from solvers.transcription.mesh import Mesh
+
+Array = NDArray[np.float64]
+
+BENDS = (*(Bend(size) for size in (0.1, -0.1, 0.3, -0.3, 1.0, -1.0)), Bend(0.3, 2), Bend(1.0, 2))
+"""Bends that are tried."""
+
+POWERS = range(-8, 9)
+"""Powers of ten that are tried for parameters of unknown size."""
+
+
+@dataclass(frozen=True, slots=True)
+class Guess:
+    """Values (SI) of all variables of a layout, and how much of the problem they violate (0: nothing)."""
+
+    z: Array
+    violation: float
+    bent: bool
+
+
+def guesses(compiled: Compiled, mesh: Mesh, where: Layout) -> list[Guess]:
+    """Guesses on a mesh, best first."""
+    problem = compiled.lowered.problem
+    parameters = np.array([first_value(p) for p in problem.parameters])
+    places = _places(problem, constants_of(compiled), parameters, where)
+    for index, place in zip(where.places, places, strict=True):
+        parameters[where.parameters == index] = place
+    _size_parameters(compiled, mesh, where, places, parameters)
+    _vary_parameters(problem, places, parameters, where)
+    found = [_guess(compiled, mesh, where, places, parameters, Bend())]
+    if found[0].violation > 1e-3:
+        found += [_guess(compiled, mesh, where, places, parameters, bend) for bend in BENDS]
+    # A bend must be clearly better than none.
+    return sorted(found, key=lambda guess: guess.violation * (1.1 if guess.bent else 1.0))
+
+
+def _guess(compiled: Compiled, mesh: Mesh, where: Layout, places: Array, parameters: Array, bend: Bend) -> Guess:
+    z = sketch(compiled, mesh, where, places, parameters, bend)
+    first = compiled.point.states + compiled.point.constraints
+    outputs = point_outputs(compiled, where, z)
+    totals = where.measures @ outputs[:, first : first + compiled.point.integrals]
+    z[where.integrals] = np.where(np.isfinite(totals), totals, 0.0)
+    return Guess(z, _violation(compiled, where, z, outputs), bent=bend.size != 0)
+
+
+def first_value(parameter: Parameter) -> float:
+    """A value inside the bounds, or the user's."""
+    lower, upper = parameter.lower, parameter.upper
+    if parameter.guess is not None:
+        return parameter.guess
+    if np.isfinite(lower) and np.isfinite(upper):
+        return float(np.sqrt(lower * upper)) if lower > 0 and upper > 20 * lower else (lower + upper) / 2
+    if np.isfinite(lower):
+        return lower + max(1.0, abs(lower))
+    if np.isfinite(upper):
+        return upper - max(1.0, abs(upper))
+    return 1.0
+
+
+def _places(problem: Problem, constants: dict[str, float], parameters: Array, where: Layout) -> Array:
+    """Values of the places; free ones without a guess are spread between their neighbours."""
+    values = np.full(len(problem.places), np.nan)
+    for index, place in enumerate(problem.places):
+        hit = np.flatnonzero(where.parameters == where.places[index])
+        if len(hit) == 0:
+            values[index] = number(place.tree, constants)
+        elif index in (0, len(values) - 1) or problem.parameters[hit[0]].guess is not None:
+            values[index] = parameters[hit[0]]
+    if values[-1] <= values[0]:
+        values[-1] = values[0] + max(1.0, abs(values[0]))
+    known = np.flatnonzero(np.isfinite(values))
+    return np.asarray(np.interp(np.arange(len(values)), known, values[known]))
+
+
+def _size_parameters(compiled: Compiled, mesh: Mesh, where: Layout, places: Array, parameters: Array) -> None:
+    """Give parameters that are open on a side and without a guess the size at which the dynamics fit the lines best."""
+    problem = compiled.lowered.problem
+    open_ended = np.array([
+        p.guess is None and not np.isfinite(p.upper - p.lower) and index not in where.places
+        and (p.lower == 0 or not np.isfinite(p.lower)) and (p.upper == 0 or not np.isfinite(p.upper))
+        for p, index in zip(problem.parameters, where.parameters, strict=True)
+    ], dtype=bool)  # fmt: skip
+    if not open_ended.any() or not problem.dynamics:
+        return
+    base = parameters.copy()
+    misfits = []
+    for power in POWERS:
+        parameters[open_ended] = base[open_ended] * 10.0**power
+        z = sketch(compiled, mesh, where, places, parameters, Bend())
+        misfits.append(_misfit(compiled, where, z))
+    least = min(misfits)
+    # The size nearest to one among those that fit as well as the best.
+    good = [power for power, misfit in zip(POWERS, misfits, strict=True) if misfit <= 1.1 * least]
+    parameters[open_ended] = base[open_ended] * 10.0 ** min(good, key=abs)
+
+
+def _vary_parameters(problem: Problem, places: Array, parameters: Array, where: Layout) -> None:
+    """Move parameters through their ranges, or within a factor of four where these are open; places go with theirs."""
+    for k, parameter in enumerate(problem.parameters):
+        share = problem.start.parameters.get(parameter.name)
+        if share is None:
+            continue
+        lower, upper = parameter.lower, parameter.upper
+        if not np.isfinite(upper - lower):
+            moved = parameters[k] * 4.0 ** (2 * share - 1)
+        elif lower > 0 and upper > 20 * lower:
+            moved = lower * (upper / lower) ** share
+        else:
+            moved = lower + share * (upper - lower)
+        parameters[k] = np.clip(moved, lower, upper)
+    _order_places(places, parameters, where)
+
+
+def _order_places(places: Array, parameters: Array, where: Layout) -> None:
+    """Places that are parameters, unless these would leave them out of order: then the parameters stay as they are."""
+    free = {k: at for at, index in enumerate(where.places) for k in np.flatnonzero(where.parameters == index)}
+    moved = places.copy()
+    for k, at in free.items():
+        moved[at] = parameters[k]
+    if np.all(np.diff(moved) > 0):
+        places[:] = moved
+    for k, at in free.items():
+        parameters[k] = places[at]
+
+
+def _misfit(compiled: Compiled, where: Layout, z: Array) -> float:
+    """How much the rates differ from the slopes of the lines over the whole range, relative to the states' sizes."""
+    rates = point_outputs(compiled, where, z)[:, : compiled.point.states]
+    slopes = z[where.nodes[-1]] - z[where.nodes[0]]
+    sizes = np.abs(z[where.nodes]).max(axis=0)
+    sizes = np.where(sizes > 0, sizes, max(float(sizes.max(initial=0.0)), 1e-300))
+    misfit = float(np.mean(np.abs(rates - slopes) / sizes)) if rates.size else 0.0
+    return misfit if np.isfinite(misfit) else np.inf
+
+
+def _violation(compiled: Compiled, where: Layout, z: Array, outputs: Array) -> float:
+    """How much of the problem a guess violates: undefined values first, then constraints and conditions."""
+    point = compiled.point
+    constants = constants_of(compiled)
+    end = end_outputs(compiled, where, z)
+    undefined = float(np.mean(~np.isfinite(outputs))) + float(np.mean(~np.isfinite(end)))
+    total = 0.0
+    pointwise = outputs[:, point.states : point.states + point.constraints]
+    for values, condition in (*zip(pointwise.T, compiled.pointwise, strict=True),
+                              *zip(end[:-1], compiled.conditions, strict=True)):  # fmt: skip
+        lower, upper = interval_of(condition, constants)
+        finite = np.atleast_1d(values)[np.isfinite(np.atleast_1d(values))]
+        if len(finite) == 0:
+            continue
+        excess = float(np.mean(np.maximum(np.maximum(lower - finite, finite - upper), 0.0)))
+        limits = [abs(limit) for limit in (lower, upper) if np.isfinite(limit)]
+        total += excess / max(float(np.abs(finite).max()), *limits) if excess else 0.0
+    return 1e3 * undefined + total

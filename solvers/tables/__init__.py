@@ -1,0 +1,1 @@
+"""Measured functions: points in, smooth functions with exact derivatives out."""

@@ -1,0 +1,338 @@
+"""A lowered problem as small CasADi functions: one for a point of the curve, one for the ends, with exact derivatives.
+
+Everything that is nonlinear happens in these two; the transcription maps the first over all points of any mesh, so
+that its cost does not depend on how the mesh is cut.  Nothing here is scaled: all quantities are in SI units.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator, Mapping
+from dataclasses import dataclass, replace
+from itertools import pairwise
+from math import pi
+
+import casadi as ca
+import numpy as np
+
+from solvers.formula.evaluate import evaluate
+from solvers.formula.nodes import At, Call, Name, Node, Number, Sum, children, with_children
+from solvers.formula.printer import text
+from solvers.observations import terminal
+from solvers.problem import Condition, Place, Problem
+from solvers.tables.lookups import Lookups
+from solvers.transcription.limits import number, quantity_bounds
+from solvers.transcription.lowering import Lowered, Quantity, simple_bound
+
+SMOOTHING = 1e-9
+"""Width, relative to one, over which `abs` and its kin are rounded so that they have derivatives."""
+
+
+def _smooth_abs(x: ca.SX) -> ca.SX:
+    return ca.sqrt(x * x + SMOOTHING**2)
+
+
+def _least(*values: ca.SX) -> ca.SX:
+    least = values[0]
+    for value in values[1:]:
+        least = (least + value - _smooth_abs(least - value)) / 2
+    return least
+
+
+OPERATIONS: dict[str, Callable[..., ca.SX]] = {
+    "sqrt": ca.sqrt, "exp": ca.exp, "log": ca.log, "sin": ca.sin, "cos": ca.cos, "tan": ca.tan,
+    "asin": ca.asin, "acos": ca.acos, "atan": ca.atan, "atan2": ca.atan2,
+    "sinh": ca.sinh, "cosh": ca.cosh, "tanh": ca.tanh,
+    "abs": _smooth_abs, "sign": lambda x: x / _smooth_abs(x), "hypot": lambda x, y: ca.sqrt(x * x + y * y),
+    "min": _least, "max": lambda *values: -_least(*(-value for value in values)),
+    "power": lambda base, exponent: base**exponent,
+}  # fmt: skip
+
+
+@dataclass(frozen=True, slots=True)
+class PointFunction:
+    """What happens at one point of the curve.
+
+    Inputs: v = (states, controls, start and end of the stretch, parameters) and d = (fraction of the stretch,
+    constants).  Outputs, in this order: the rates of the states, the pointwise constraints, the integrands of the
+    integral conditions, the integrand of the functional.  Rates and integrands are per fraction of the stretch.
+    """
+
+    states: int
+    controls: int
+    constraints: int
+    integrals: int
+    value: ca.Function  # (v, d) -> all outputs
+    jacobian: ca.Function  # (v, d) -> nonzeros of the Jacobian of all outputs
+    jacobian_rows: list[int]
+    jacobian_columns: list[int]
+    hessian: ca.Function  # (v, d, weights of the outputs) -> nonzeros of the upper triangle
+    hessian_rows: list[int]
+    hessian_columns: list[int]
+
+    @property
+    def inputs(self) -> int:
+        """The length of v."""
+        return int(self.value.size1_in(0))
+
+    @property
+    def outputs(self) -> int:
+        """The number of outputs."""
+        return int(self.value.size1_out(0))
+
+
+@dataclass(frozen=True, slots=True)
+class EndFunction:
+    """What depends on values at places only.
+
+    Inputs: y = (states at every place, places, parameters, integrals) and the constants.  Outputs: the bodies of the
+    conditions, then the endpoint term of the functional.
+    """
+
+    value: ca.Function
+    jacobian: ca.Function
+    jacobian_rows: list[int]
+    jacobian_columns: list[int]
+    hessian: ca.Function
+    hessian_rows: list[int]
+    hessian_columns: list[int]
+
+    @property
+    def outputs(self) -> int:
+        """The number of outputs."""
+        return int(self.value.size1_out(0))
+
+
+@dataclass(frozen=True, slots=True)
+class Compiled:
+    """A problem ready to be transcribed: its two functions and the conditions that each output stands for."""
+
+    lowered: Lowered
+    point: PointFunction
+    end: EndFunction
+    pointwise: tuple[Condition, ...]  # the constraints that are outputs of the point function, dynamics lines first
+    bounds: tuple[tuple[Quantity, Condition], ...]  # the constraints that are plain bounds on a state or control
+    conditions: tuple[Condition, ...]  # the conditions that are outputs of the end function
+    fixed: tuple[tuple[int, int, Condition], ...]  # (state, place, condition): conditions on a single value
+    rims: tuple[tuple[int, int, Condition], ...]  # (control, place, condition): the same for a control at an end
+    constants: tuple[float, ...]
+
+
+class Environment:
+    """Symbols for one place of the curve, and the formulas that are made of them."""
+
+    def __init__(
+        self,
+        lowered: Lowered,
+        symbols: dict[Quantity, ca.SX],
+        numbers: dict[str, ca.SX],
+        lookups: Lookups,
+        value_at: Callable[[str, int, Node, str], ca.SX] | None = None,
+    ) -> None:
+        self._lowered = lowered
+        self._symbols = dict(symbols)
+        self._numbers = dict(numbers)
+        self._abbreviations = dict(lowered.problem.where)
+        self._operations = OPERATIONS | {"table": lookups.value}
+        self._value_at = value_at
+
+    def formula(self, tree: Node) -> ca.SX:
+        """The tree as an expression of the symbols."""
+        return ca.SX(evaluate(tree, self._look_up, self._operations, self._value_at))
+
+    def _look_up(self, name: str, order: int) -> ca.SX:
+        if name in self._abbreviations and name not in self._numbers:
+            self._numbers[name] = self.formula(self._abbreviations[name])
+        if name in self._numbers:
+            return self._numbers[name]
+        if (name, order) not in self._symbols:
+            self._symbols[name, order] = self.formula(self._lowered.given[name, order])
+        return self._symbols[name, order]
+
+
+def compile_problem(lowered: Lowered) -> Compiled:
+    """Build both functions; costs some milliseconds, once per problem."""
+    problem = lowered.problem
+    constants = ca.SX.sym("c", len(problem.constants))
+    parameters = ca.SX.sym("p", len(problem.parameters))
+    numbers: dict[str, ca.SX] = {"pi": ca.SX(pi)}
+    numbers |= {c.name: constants[i] for i, c in enumerate(problem.constants)}
+    numbers |= {p.name: parameters[i] for i, p in enumerate(problem.parameters)}
+    integrands: list[Node] = []
+    conditions, fixed, rims, end = _end_function(lowered, numbers, parameters, constants, integrands)
+    point, pointwise, bounds = _point_function(lowered, numbers, parameters, constants, integrands)
+    values = tuple(c.value for c in problem.constants)
+    return Compiled(lowered, point, end, pointwise, bounds, conditions, fixed, rims, values)
+
+
+def _point_function(
+    lowered: Lowered, numbers: dict[str, ca.SX], parameters: ca.SX, constants: ca.SX, integrands: list[Node]
+) -> tuple[PointFunction, tuple[Condition, ...], tuple[tuple[Quantity, Condition], ...]]:
+    problem = lowered.problem
+    x = ca.SX.sym("x", len(lowered.states))
+    u = ca.SX.sym("u", len(lowered.controls))
+    start, end, fraction = ca.SX.sym("a"), ca.SX.sym("b"), ca.SX.sym("s")
+    length = end - start
+    symbols = {q: x[i] for i, q in enumerate(lowered.states)} | {q: u[i] for i, q in enumerate(lowered.controls)}
+    lookups = Lookups()
+    here = Environment(lowered, symbols, numbers | {problem.independent: start + fraction * length}, lookups)
+    rates = [length * here.formula(Name(name, order + 1)) for name, order in lowered.states]
+    zero = Number(0.0, "0")
+    pointwise = [Condition(Name("?"), zero, zero, e.label, e.pointer) for e in lowered.equalities]
+    bodies = [here.formula(e.left) - here.formula(e.right) for e in lowered.equalities]
+    bounds = []
+    plain = set(lowered.states) | set(lowered.controls)
+    for condition in problem.constraints:
+        target = simple_bound(condition)
+        if target in plain and not condition.equality:
+            bounds.append((target, condition))
+        else:
+            pointwise.append(condition)
+            bodies.append(here.formula(condition.body))
+    weighed = [length * here.formula(tree) for tree in integrands]
+    cost = length * here.formula(problem.integrand) if problem.integrand is not None else ca.SX(0)
+    v, d = ca.vertcat(x, u, start, end, parameters), ca.vertcat(fraction, constants)
+    outputs = ca.vertcat(*rates, *bodies, *weighed, cost)
+    function = PointFunction(len(lowered.states), len(lowered.controls), len(bodies), len(weighed),
+                             *_with_derivatives("point", v, d, outputs, lookups))  # fmt: skip
+    return function, tuple(pointwise), tuple(bounds)
+
+
+def _end_function(
+    lowered: Lowered, numbers: dict[str, ca.SX], parameters: ca.SX, constants: ca.SX, integrands: list[Node]
+) -> tuple[
+    tuple[Condition, ...], tuple[tuple[int, int, Condition], ...], tuple[tuple[int, int, Condition], ...], EndFunction
+]:
+    problem = lowered.problem
+    values = [ca.SX.sym(f"x{i}", len(lowered.states)) for i in range(len(problem.places))]
+    places = ca.SX.sym("t", len(problem.places))
+    lookups = Lookups()
+    environments = [
+        Environment(
+            lowered,
+            {q: values[i][k] for k, q in enumerate(lowered.states)},
+            numbers | {problem.independent: places[i]},
+            lookups,
+        )
+        for i in range(len(problem.places))
+    ]
+
+    ordinals = {id(place.tree): index for index, place in enumerate(problem.places)}  # most trees are the very places
+
+    def value_at(name: str, order: int, place: Node, side: str) -> ca.SX:
+        index = ordinals.get(id(place))
+        return environments[place_index(problem.places, place) if index is None else index].formula(Name(name, order))
+
+    conditions, trees, fixed = [], [], []
+    rims = []
+    states = {q: k for k, q in enumerate(lowered.states)}
+    controls = {q: k for k, q in enumerate(lowered.controls)}
+    for condition in (*problem.endpoints, *problem.integrals, *_in_order(problem)):
+        body = condition.body
+        if isinstance(body, At) and (body.name, body.order) in states:
+            fixed.append((states[body.name, body.order], place_index(problem.places, body.place), condition))
+        elif isinstance(body, At) and (body.name, body.order) in controls:
+            rims.append((controls[body.name, body.order], place_index(problem.places, body.place), condition))
+        else:
+            conditions.append(condition)
+            trees.append(_lift_integrals(body, integrands))
+    term = _lift_integrals(terminal(problem) or Number(0.0, "0"), integrands)
+    totals = ca.SX.sym("q", len(integrands))
+    numbers = numbers | {_total(k): totals[k] for k in range(len(integrands))}
+    outside = Environment(lowered, {}, numbers, lookups, value_at)
+    outputs = ca.vertcat(*(outside.formula(tree) for tree in (*trees, term)))
+    y = ca.vertcat(*values, places, parameters, totals)
+    function = EndFunction(*_with_derivatives("end", y, constants, outputs, lookups))
+    return tuple(conditions), tuple(fixed), tuple(rims), function
+
+
+def _in_order(problem: Problem) -> Iterator[Condition]:
+    """What keeps free places in order where their limits do not: a negative length could cost less than nothing."""
+    constants = {c.name: c.value for c in problem.constants}
+    free = {p.name: (p.lower, p.upper) for p in problem.parameters}
+
+    def limits(place: Place) -> tuple[float, float]:
+        if isinstance(place.tree, Name) and place.tree.name in free:
+            return free[place.tree.name]
+        return (number(place.tree, constants),) * 2
+
+    for before, after in pairwise(problem.places):
+        if limits(after)[0] < limits(before)[1]:
+            length = Sum((after.tree, before.tree), (False, True))
+            yield Condition(length, Number(0.0, "0"), None, f"{before.label} before {after.label}", "")
+
+
+def _total(index: int) -> str:
+    """The name that stands for an integral in a tree; no user can write it."""
+    return f"∫{index}"
+
+
+def _lift_integrals(tree: Node, integrands: list[Node]) -> Node:
+    """The tree with every integral replaced by a name for its value; the integrands are collected."""
+    if isinstance(tree, Call) and tree.function == "integral":
+        integrands.append(tree.arguments[0])
+        return Name(_total(len(integrands) - 1))
+    return with_children(tree, tuple(_lift_integrals(part, integrands) for part in children(tree)))
+
+
+def place_index(places: tuple[Place, ...], tree: Node) -> int:
+    """Which of the places a tree names."""
+    wanted = _key(tree)
+    return next(i for i, place in enumerate(places) if _key(place.tree) == wanted)
+
+
+def _key(tree: Node) -> float | str:
+    """What makes two ways to write a place the same."""
+    return tree.value if isinstance(tree, Number) else text(tree)
+
+
+def _with_derivatives(
+    name: str, v: ca.SX, d: ca.SX, outputs: ca.SX, lookups: Lookups
+) -> tuple[ca.Function, ca.Function, list[int], list[int], ca.Function, list[int], list[int]]:
+    """The function, the nonzeros of its Jacobian and of its weighted Hessian's upper triangle, with their places."""
+    weights = ca.SX.sym("w", outputs.size1())
+    jacobian = ca.jacobian(outputs, v)
+    hessian = ca.triu(ca.hessian(ca.dot(weights, outputs), v)[0])
+    jacobian_columns, jacobian_rows = _places(jacobian.sparsity())
+    hessian_columns, hessian_rows = _places(hessian.sparsity())
+    value, slopes, curvatures = lookups.settled([ca.densify(outputs), _column(jacobian), _column(hessian)])
+    return (
+        ca.Function(name, [v, d], [value]),
+        ca.Function(name + "_jacobian", [v, d], [slopes]),
+        jacobian_rows,
+        jacobian_columns,
+        ca.Function(name + "_hessian", [v, d, weights], [curvatures]),
+        hessian_rows,
+        hessian_columns,
+    )
+
+
+def _column(matrix: ca.SX) -> ca.SX:
+    """The nonzeros of a matrix as one column."""
+    return ca.vec(matrix[matrix.sparsity().find()]) if matrix.nnz() else ca.SX(0, 1)
+
+
+def _places(sparsity: ca.Sparsity) -> tuple[list[int], list[int]]:
+    """Column and row of every nonzero, in CasADi's order."""
+    rows, columns = sparsity.get_triplet()
+    return list(columns), list(rows)
+
+
+def with_constants(compiled: Compiled, values: Mapping[str, float]) -> Compiled:
+    """The same compiled problem with other values of some constants; its functions take them as inputs."""
+    lowered = compiled.lowered
+    constants = tuple(replace(c, value=values.get(c.name, c.value)) for c in lowered.problem.constants)
+    changed = replace(lowered, problem=replace(lowered.problem, constants=constants))
+    return replace(compiled, lowered=changed, constants=tuple(c.value for c in constants))
+
+
+def linear_controls(compiled: Compiled) -> list[int]:
+    """Bounded controls in which everything is linear, by structure: those that switch or run singular."""
+    _, _, lower, upper = quantity_bounds(compiled)
+    n = compiled.point.states
+    own = {row for row, column in zip(compiled.point.hessian_rows, compiled.point.hessian_columns, strict=True)
+           if row == column}  # fmt: skip
+    return [
+        index
+        for index in range(compiled.point.controls)
+        if n + index not in own and np.isfinite(upper[index] - lower[index])
+    ]

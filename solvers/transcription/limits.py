@@ -1,0 +1,114 @@
+"""The limits of a problem as bounds on the variables and constraints of its program, in SI."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import TYPE_CHECKING
+
+import numpy as np
+from numpy.typing import NDArray
+
+from solvers.formula.evaluate import REAL, evaluate
+from solvers.formula.nodes import Node
+from solvers.problem import Condition, Held
+
+if TYPE_CHECKING:
+    from solvers.transcription.functions import Compiled
+    from solvers.transcription.layout import Layout, Rows
+
+Array = NDArray[np.float64]
+
+
+def number(tree: Node, constants: Mapping[str, float]) -> float:
+    """The value of a formula of numbers and constants."""
+    return float(evaluate(tree, lambda name, order: constants[name], REAL))
+
+
+def interval_of(condition: Condition, constants: Mapping[str, float]) -> tuple[float, float]:
+    """The least and the greatest value that a condition allows."""
+    lower = -np.inf if condition.lower is None else number(condition.lower, constants)
+    upper = np.inf if condition.upper is None else number(condition.upper, constants)
+    return lower, upper
+
+
+def quantity_bounds(compiled: Compiled) -> tuple[Array, Array, Array, Array]:
+    """Bounds of the states and of the controls: lower and upper of each, from `within` and plain constraints."""
+    lowered = compiled.lowered
+    constants = constants_of(compiled)
+    bounds = {quantity: [-np.inf, np.inf] for quantity in (*lowered.states, *lowered.controls)}
+    for unknown in lowered.problem.unknowns:
+        if (unknown.name, 0) in bounds:
+            bounds[unknown.name, 0] = [unknown.lower, unknown.upper]
+    for quantity, condition in compiled.bounds:
+        lower, upper = interval_of(condition, constants)
+        bounds[quantity] = [max(bounds[quantity][0], lower), min(bounds[quantity][1], upper)]
+    states = np.array([bounds[q] for q in lowered.states]).reshape(-1, 2)
+    controls = np.array([bounds[q] for q in lowered.controls]).reshape(-1, 2)
+    return states[:, 0], states[:, 1], controls[:, 0], controls[:, 1]
+
+
+def constants_of(compiled: Compiled) -> dict[str, float]:
+    """The values of the constants by name."""
+    return {c.name: c.value for c in compiled.lowered.problem.constants}
+
+
+def limits(compiled: Compiled, where: Layout, rows: Rows) -> tuple[Array, Array, Array, Array]:
+    """Lower and upper bounds of z, then of g."""
+    problem = compiled.lowered.problem
+    constants = constants_of(compiled)
+    lower, upper = np.full(where.size, -np.inf), np.full(where.size, np.inf)
+    state_lower, state_upper, control_lower, control_upper = quantity_bounds(compiled)
+    for indices in (where.nodes, where.inner):
+        lower[indices], upper[indices] = state_lower, state_upper
+    lower[where.controls], upper[where.controls] = control_lower, control_upper
+    for held in problem.held:
+        _hold(held, compiled, where, lower, upper)
+    for touch in problem.touches:
+        node = where.at_place[[place.label for place in problem.places].index(touch.place)]
+        states = compiled.lowered.states
+        at = where.nodes[node, states.index((touch.name, touch.order))]
+        lower[at] = upper[at] = lower[at] if touch.side < 0 else upper[at]
+        slope = where.nodes[node, states.index((touch.name, touch.order + 1))]
+        lower[slope] = upper[slope] = 0.0
+    for parameter, index in zip(problem.parameters, where.parameters, strict=True):
+        lower[index], upper[index] = parameter.lower, parameter.upper
+    for place, index in zip(problem.places, where.places, strict=True):
+        if index not in where.parameters:
+            lower[index] = upper[index] = number(place.tree, constants)
+    for state, at, condition in compiled.fixed:
+        index = where.nodes[where.at_place[at], state]
+        least, most = interval_of(condition, constants)
+        lower[index], upper[index] = max(lower[index], least), min(upper[index], most)
+    row_lower, row_upper = np.zeros(rows.count), np.zeros(rows.count)
+    count = len(where.fractions)
+    pointwise = np.array([interval_of(c, constants) for c in compiled.pointwise]).reshape(-1, 2)
+    row_lower[rows.pointwise : rows.rims] = np.tile(pointwise[:, 0], count)
+    row_upper[rows.pointwise : rows.rims] = np.tile(pointwise[:, 1], count)
+    rims = np.array([interval_of(c, constants) for _, _, c in compiled.rims]).reshape(-1, 2)
+    row_lower[rows.rims : rows.rims + len(rims)], row_upper[rows.rims : rows.rims + len(rims)] = rims.T
+    conditions = np.array([interval_of(c, constants) for c in compiled.conditions]).reshape(-1, 2)
+    row_lower[rows.conditions :], row_upper[rows.conditions :] = conditions[:, 0], conditions[:, 1]
+    return lower, upper, row_lower, row_upper
+
+
+def _hold(held: Held, compiled: Compiled, where: Layout, lower: Array, upper: Array) -> None:
+    """Fix what is held on its limit along a stretch.
+
+    A state that stays on a constant limit has derivatives zero: they are fixed where the stretch begins, and from
+    there on follow from the dynamics.
+    """
+    lowered = compiled.lowered
+    quantity = (held.name, held.order)
+    side = lower if held.side < 0 else upper
+    if quantity in lowered.controls:
+        inside = where.controls[where.stretch == held.stretch, lowered.controls.index(quantity)]
+        lower[inside] = upper[inside] = side[inside]
+        return
+    start, end = where.at_place[held.stretch], where.at_place[held.stretch + 1]
+    k = lowered.states.index(quantity)
+    inside = np.concatenate([where.nodes[start : end + 1, k], where.inner[where.stretch == held.stretch, k]])
+    lower[inside] = upper[inside] = side[inside]
+    for index, (name, order) in enumerate(lowered.states):
+        if name == held.name and order > held.order:
+            at = where.nodes[start, index]
+            lower[at] = upper[at] = 0.0

@@ -1,0 +1,228 @@
+"""The numbers of a program: f, g and their exact derivatives at any z, by the two functions of a compiled problem.
+
+Every nonlinear number is made by the point function, mapped over all points, and the end function; where it goes is
+said by constant indices.  So what a mesh costs is a few array operations, however it is cut.
+"""
+
+from __future__ import annotations
+
+from copy import copy
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from solvers.transcription.entries import Entries, Pattern, Recipe, counted
+from solvers.transcription.evaluation import Mapped
+from solvers.transcription.functions import Compiled
+from solvers.transcription.layout import Layout, Rows
+from solvers.transcription.linear_rows import alike, loose_rows, slope_entries, slopes
+from solvers.transcription.mesh import Mesh
+
+Array = NDArray[np.float64]
+Indices = NDArray[np.int64]
+
+
+@dataclass(frozen=True, slots=True)
+class Placement:
+    """A compiled problem on a mesh: where everything stands among the variables and the rows, and its size."""
+
+    compiled: Compiled
+    mesh: Mesh
+    layout: Layout
+    rows: Rows
+    scale: Array  # z times scale is in SI
+    row_scale: Array  # g times row_scale is in SI
+    value_scale: float  # f times value_scale is the functional in SI (negative for a maximum)
+    gather: Indices  # M x inputs of the point function
+    end_gather: Indices
+    fixed: NDArray[np.bool_]  # variables that cannot move
+
+
+class Numbers:
+    """What the minimiser asks for, all of it scaled; the nonzeros are in the order of the patterns."""
+
+    def __init__(self, placed: Placement) -> None:
+        self._placed = placed
+        where, rows = placed.layout, placed.rows
+        point, end = placed.compiled.point, placed.compiled.end
+        self.count, self.conditions = len(where.fractions), end.outputs - 1
+        self.value_factor = 1 / placed.value_scale
+        ordinal = np.arange(self.count)[:, None]
+        n, c, q = point.states, point.constraints, point.integrals
+        # Where every output of the point function goes: a row and a factor; the functional, the last one, has no row.
+        self.target = np.hstack([rows.defects + ordinal * n + np.arange(n), rows.pointwise + ordinal * c + np.arange(c),
+                                 np.tile(rows.integrals + np.arange(q), (self.count, 1))]).astype(np.int64)  # fmt: skip
+        widths = np.repeat([i.width for i in placed.mesh.intervals], np.diff(where.first))
+        factor = [
+            np.tile(-widths[:, None], (1, n)),
+            np.ones((self.count, c)),
+            np.tile(-where.measures[:, None], (1, q)),
+        ]
+        self.factor = np.hstack(factor) / placed.row_scale[self.target]
+        self.cost = where.measures * self.value_factor
+        self.condition_rows = rows.conditions + np.arange(self.conditions)
+        self._sizes = placed.scale[placed.gather]
+        self._end_sizes = placed.scale[placed.end_gather]
+        self._take(placed.compiled.constants)
+        self._point = {kind: Mapped(getattr(point, kind), self.count) for kind in ("value", "jacobian", "hessian")}
+        self._end = {kind: Mapped(getattr(end, kind), 1) for kind in ("value", "jacobian", "hessian")}
+        self._alike = alike(placed)
+        self._linear = _linear(placed)
+        self._jacobian, self._gradient, self._hessian = self._recipes()
+
+    def _take(self, constants: tuple[float, ...]) -> None:
+        """Put values of the constants in; nothing is known yet for them."""
+        fractions = self._placed.layout.fractions
+        self._given = np.hstack([fractions[:, None], np.tile(constants, (self.count, 1))])
+        self._constants = np.array(constants, dtype=float)
+        self._z = np.full(self._placed.layout.size, np.nan)
+        self._known: dict[str, Array] = {}
+
+    def restated(self, constants: tuple[float, ...]) -> Numbers:
+        """The same numbers for other values of the constants."""
+        other = copy(self)
+        other._take(constants)
+        return other
+
+    def alike(self, other: Numbers) -> bool:
+        """Whether both are the same numbers but for the values of the constants."""
+        return self._jacobian is other._jacobian
+
+    @property
+    def jacobian_pattern(self) -> Pattern:
+        """Where the Jacobian of g has nonzeros."""
+        return self._jacobian.pattern
+
+    @property
+    def hessian_pattern(self) -> Pattern:
+        """Where the upper triangle of the Hessian of the Lagrangian has nonzeros."""
+        return self._hessian.pattern
+
+    def value(self, z: Array) -> float:
+        """f."""
+        outputs, end = self._outputs(z)
+        return float(outputs[:, -1] @ self.cost + end[-1] * self.value_factor)
+
+    def constraints(self, z: Array) -> Array:
+        """g."""
+        placed, rows = self._placed, self._placed.rows
+        n, c = placed.compiled.point.states, placed.compiled.point.constraints
+        outputs, end = self._outputs(z)
+        columns, rank, values = self._linear
+        g = counted(rank, values * z[columns], rows.count)
+        g[: rows.ends] = (outputs[:, :n] * self.factor[:, :n]).ravel() + slopes(self._alike, z)
+        g[rows.pointwise : rows.rims] = (outputs[:, n : n + c] * self.factor[:, n : n + c]).ravel()
+        g[rows.integrals : rows.conditions] += (outputs[:, n + c : -1] * self.factor[:, n + c :]).sum(axis=0)
+        g[rows.conditions :] = end[:-1] / placed.row_scale[rows.conditions :]
+        return g
+
+    def gradient(self, z: Array) -> Array:
+        """The slopes of f."""
+        found = np.zeros(len(z))
+        found[self._gradient.pattern.rows] = self._gradient.nonzeros(self._slopes(z))
+        return found
+
+    def jacobian(self, z: Array) -> Array:
+        """The nonzeros of the slopes of g."""
+        return self._jacobian.nonzeros(self._slopes(z))
+
+    def hessian(self, z: Array, weight_f: float, weight_g: Array) -> Array:
+        """The nonzeros of the upper triangle of the Hessian of weight_f * f + weight_g.g."""
+        rows, n = self._placed.rows, self._placed.compiled.point.states
+        c = self._placed.compiled.point.constraints
+        weights = np.empty((self.count, self._placed.compiled.point.outputs))
+        weights[:, :n] = weight_g[: rows.ends].reshape(self.count, n) * self.factor[:, :n]
+        weights[:, n : n + c] = weight_g[rows.pointwise : rows.rims].reshape(self.count, c) * self.factor[:, n : n + c]
+        weights[:, n + c : -1] = weight_g[rows.integrals : rows.conditions] * self.factor[:, n + c :]
+        weights[:, -1] = self.cost * weight_f
+        on_conditions = weight_g[rows.conditions :] / self._placed.row_scale[rows.conditions :]
+        end_weights = np.append(on_conditions, weight_f * self.value_factor)
+        v, y = self._inputs(z)
+        numbers = np.concatenate([self._point["hessian"](v, self._given, weights).ravel(),
+                                  self._end["hessian"](y, self._constants, end_weights).ravel()])  # fmt: skip
+        return self._hessian.nonzeros(numbers)
+
+    def _inputs(self, z: Array) -> tuple[Array, Array]:
+        """Variables in SI as the functions take them; what was made of other ones is forgotten."""
+        if not np.array_equal(z, self._z):
+            self._z[:] = z
+            self._known = {"v": z[self._placed.gather] * self._sizes, "y": z[self._placed.end_gather] * self._end_sizes}
+        return self._known["v"], self._known["y"]
+
+    def _outputs(self, z: Array) -> tuple[Array, Array]:
+        """The outputs of the two functions: points x outputs, and those at the ends."""
+        v, y = self._inputs(z)
+        if "outputs" not in self._known:
+            self._known["outputs"] = self._point["value"](v, self._given)
+            self._known["ends"] = self._end["value"](y, self._constants)[0]
+        return self._known["outputs"], self._known["ends"]
+
+    def _slopes(self, z: Array) -> Array:
+        """The nonzeros of the Jacobians of the two functions, one after the other."""
+        v, y = self._inputs(z)
+        if "slopes" not in self._known:
+            self._known["slopes"] = np.concatenate([self._point["jacobian"](v, self._given).ravel(),
+                                                    self._end["jacobian"](y, self._constants).ravel()])  # fmt: skip
+        return self._known["slopes"]
+
+    def _moving(self, columns: Indices) -> NDArray[np.bool_]:
+        """Of inputs of the point function those that are not fixed places all along: these need no derivatives."""
+        placed, point = self._placed, self._placed.compiled.point
+        first = point.states + point.controls
+        still = [k for k in (first, first + 1) if placed.fixed[placed.gather[:, k]].all()]
+        return ~np.isin(columns, still)
+
+    def _recipes(self) -> tuple[Recipe, Recipe, Recipe]:
+        """Of the Jacobian of g, of the gradient of f, of the Hessian's upper triangle."""
+        placed, point, end = self._placed, self._placed.compiled.point, self._placed.compiled.end
+        size, scale, row_scale = placed.layout.size, placed.scale, placed.row_scale
+        jacobian, gradient, hessian = Entries(), Entries(), Entries()
+        for row, columns, values in (*loose_rows(placed), *slope_entries(placed, self._alike)):
+            jacobian.add(row, columns, values * scale[columns] / row_scale[row])
+        out, by = np.array(point.jacobian_rows, int), np.array(point.jacobian_columns, int)
+        each, moving = np.arange(self.count)[:, None] * len(out), self._moving(by)
+        inside = np.flatnonzero((out < point.outputs - 1) & moving)
+        columns, own = placed.gather[:, by[inside]], out[inside]
+        jacobian.add(self.target[:, own], columns, self.factor[:, own] * scale[columns], each + inside)
+        inside = np.flatnonzero((out == point.outputs - 1) & moving)
+        columns = placed.gather[:, by[inside]]
+        gradient.add(columns, 0, self.cost[:, None] * scale[columns], each + inside)
+        offset = self.count * len(out)
+        out, by = np.array(end.jacobian_rows, int), np.array(end.jacobian_columns, int)
+        inside = np.flatnonzero(out < self.conditions)
+        columns, own = placed.end_gather[by[inside]], self.condition_rows[out[inside]]
+        jacobian.add(own, columns, scale[columns] / row_scale[own], offset + inside)
+        inside = np.flatnonzero(out == self.conditions)
+        columns = placed.end_gather[by[inside]]
+        gradient.add(columns, 0, self.value_factor * scale[columns], offset + inside)
+        first, second = np.array(point.hessian_rows, int), np.array(point.hessian_columns, int)
+        inside = np.flatnonzero(self._moving(first) & self._moving(second))
+        sources = np.arange(self.count)[:, None] * len(first) + inside
+        offset = self.count * len(first)
+        first, second = first[inside], second[inside]
+        self._add_pairs(hessian, placed.gather[:, first], placed.gather[:, second], first != second, sources)
+        first, second = np.array(end.hessian_rows, int), np.array(end.hessian_columns, int)
+        sources = offset + np.arange(len(first))
+        self._add_pairs(hessian, placed.end_gather[first], placed.end_gather[second], first != second, sources)
+        hessian.add(0, 0, 0.0)  # so that there is a pattern where nothing is curved
+        shapes = (placed.rows.count, size), (size, 1), (size, size)
+        made = (e.recipe(s) for e, s in zip((jacobian, gradient, hessian), shapes, strict=True))
+        return next(made), next(made), next(made)
+
+    def _add_pairs(
+        self, entries: Entries, first: Indices, second: Indices, mixed: NDArray[np.bool_], sources: Indices
+    ) -> None:
+        """Second derivatives; where two inputs are the same variable, a mixed one counts twice on the diagonal."""
+        scale = self._placed.scale
+        values = scale[first] * scale[second] * np.where(mixed & (first == second), 2.0, 1.0)
+        entries.add(np.minimum(first, second), np.maximum(first, second), values, sources)
+
+
+def _linear(placed: Placement) -> tuple[Indices, Indices, Array]:
+    """Columns, rows and values (scaled) of the linear rows that are no defects."""
+    blocks = list(loose_rows(placed))
+    rows = np.concatenate([row for row, _, _ in blocks])
+    columns = np.concatenate([column for _, column, _ in blocks])
+    values = np.concatenate([value for _, _, value in blocks])
+    return columns, rows, values * placed.scale[columns] / placed.row_scale[rows]

@@ -1,0 +1,272 @@
+"""The answer of a program as functions: states, controls and costates as piecewise polynomials, in SI.
+
+States are polynomials of degree K through the left node and the K points of each interval, controls and costates of
+degree K - 1 through the points.  Costates come from the multipliers of the collocation defects; see Garg et al. (2010),
+Automatica 46, section 4 (from memory): costate = -multiplier / quadrature weight.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from solvers.curve import Curve, side_by_side
+from solvers.minimise.ipopt import Minimum, Start
+from solvers.problem import Problem, Seek
+from solvers.transcription.collocation import Family
+from solvers.transcription.functions import Compiled
+from solvers.transcription.layout import Layout, row_order
+from solvers.transcription.limits import constants_of, number
+from solvers.transcription.lowering import primed
+from solvers.transcription.mesh import Mesh
+from solvers.transcription.program import Program
+
+Array = NDArray[np.float64]
+
+NOISE = 1e-8
+"""What is smaller than this, relative to its scale, is zero to the minimiser."""
+
+BINDING = 1e-5
+"""Least push of a pointwise constraint that binds, over its size and relative to the value's."""
+
+
+@dataclass(frozen=True, slots=True)
+class Trajectory:
+    """One solved (or guessed) mesh, in SI (N intervals, M points, n states, m controls, c pointwise constraints).
+
+    `z` all variables; `breaks` (N+1); `points` (M) places of the points; `states` (M x n) and `controls` (M x m) there;
+    `nodes` ((N+1) x n) states at the breaks; `costates` (M x n) and `multipliers` (M x c: per unit of the independent
+    variable) are of the problem as a minimisation: negative of the user's for a maximum.
+    """
+
+    program: Program
+    z: Array
+    value: float
+    places: Array
+    parameters: Array
+    breaks: Array
+    points: Array
+    nodes: Array
+    states: Array
+    controls: Array
+    costates: Array
+    multipliers: Array
+    bound_multipliers: Array
+    row_multipliers: Array
+
+    def state_modes(self) -> list[Array]:
+        """Legendre coefficients of the states, (K+1) x n for each interval."""
+        return _modes(self.program, self.states, self.nodes)
+
+    def control_modes(self) -> list[Array]:
+        """Legendre coefficients of the controls, K x m for each interval."""
+        return _modes(self.program, self.controls, None)
+
+    def costate_modes(self) -> list[Array]:
+        """Legendre coefficients of the costates, K x n for each interval."""
+        return _modes(self.program, self.costates, None)
+
+
+def _modes(program: Program, values: Array, nodes: Array | None) -> list[Array]:
+    first = program.layout.first
+    modes = []
+    for k, interval in enumerate(program.mesh.intervals):
+        inside = values[first[k] : first[k + 1]]
+        if nodes is None:
+            modes.append(interval.scheme.control_modes @ inside)
+        else:
+            modes.append(interval.scheme.state_modes @ np.vstack([nodes[k], inside]))
+    return modes
+
+
+def trajectory(program: Program, minimum: Minimum) -> Trajectory:
+    """Read a solved program."""
+    where, scale = program.layout, program.scale
+    z = minimum.z * scale
+    places = place_values(program.compiled.lowered.problem, where, z)
+    point = program.compiled.point
+    count = len(where.fractions)
+    sign_and_size = abs(program.value_scale)
+    bounds = np.where(program.lower == program.upper, -_slopes(program, minimum), minimum.bound_multipliers)
+    rows = minimum.multipliers / program.row_scale * sign_and_size  # multipliers of the rows in SI
+    defects = rows[: count * point.states].reshape(count, point.states)
+    weights = np.concatenate([i.scheme.weights for i in program.mesh.intervals])
+    constraints = rows[program.rows.pointwise : program.rows.rims].reshape(count, point.constraints)
+    return Trajectory(
+        program=program,
+        z=z,
+        value=minimum.value * program.value_scale,
+        places=places,
+        parameters=z[where.parameters],
+        breaks=program.mesh.breaks(places),
+        points=where.points(places),
+        nodes=z[where.nodes],
+        states=z[where.inner],
+        controls=z[where.controls],
+        costates=-defects / weights[:, None],
+        multipliers=constraints / (where.measures * where.lengths(places))[:, None],
+        bound_multipliers=bounds * sign_and_size / scale,
+        row_multipliers=rows,
+    )
+
+
+def place_values(problem: Problem, where: Layout, z: Array) -> Array:
+    """The places; those that are given exactly as they were given, not as scaling has left them."""
+    constants = {c.name: c.value for c in problem.constants}
+    free = np.isin(where.places, where.parameters)
+    return np.array([z[index] if moves else number(place.tree, constants)
+                     for place, index, moves in zip(problem.places, where.places, free, strict=True)])  # fmt: skip
+
+
+def _slopes(program: Program, minimum: Minimum) -> Array:
+    """The slope of f + multipliers.g in every variable (scaled).
+
+    The minimiser takes fixed variables out and knows no multipliers of theirs: this slope, negative, is what they are.
+    """
+    numbers = program.numbers
+    pushed = numbers.jacobian_pattern.times_from_left(minimum.multipliers, numbers.jacobian(minimum.z))
+    return numbers.gradient(minimum.z) + pushed
+
+
+def curve(path: Trajectory) -> Curve:
+    """Every unknown with its derivatives up to its order."""
+    lowered = path.program.compiled.lowered
+    functions: dict[str, tuple[Array, ...]] = {}
+    states, controls = path.state_modes(), path.control_modes()
+    widths = np.diff(path.breaks)
+    for index, quantity in enumerate(lowered.states):
+        functions[primed(quantity)] = tuple(modes[:, index] for modes in states)
+    for index, quantity in enumerate(lowered.controls):
+        functions[primed(quantity)] = tuple(modes[:, index] for modes in controls)
+    for name, order in lowered.given:
+        below = functions[primed((name, order - 1))]
+        functions[primed((name, order))] = tuple(
+            np.polynomial.legendre.legder(modes) * (2 / width) for modes, width in zip(below, widths, strict=True)
+        )
+    return Curve(path.breaks, functions)
+
+
+def costate_curve(path: Trajectory) -> Curve:
+    """The costates, and the multipliers of the pointwise constraints that bind, in the user's sense of better."""
+    compiled = path.program.compiled
+    sign = -1.0 if compiled.lowered.problem.seek is Seek.MAXIMUM else 1.0
+    modes = path.costate_modes()
+    functions = {
+        primed(quantity): tuple(sign * part[:, index] for part in modes)
+        for index, quantity in enumerate(compiled.lowered.states)
+    }
+    rows = path.program.rows
+    sizes = path.program.row_scale[rows.pointwise : rows.rims].reshape(path.multipliers.shape)
+    pushes = np.abs(path.row_multipliers[rows.pointwise : rows.rims].reshape(sizes.shape) * sizes).sum(axis=0)
+    multiplier_modes = _modes(path.program, path.multipliers, None)
+    for index, condition in enumerate(compiled.pointwise):
+        if pushes[index] > BINDING * abs(path.program.value_scale):
+            functions[condition.label] = tuple(sign * part[:, index] for part in multiplier_modes)
+    return Curve(path.breaks, functions)
+
+
+@dataclass(frozen=True, slots=True)
+class Carried:
+    """A trajectory brought onto another mesh, in SI: the variables, and the multipliers of bounds and rows."""
+
+    z: Array
+    bounds: Array
+    rows: Array
+
+    def onto(self, program: Program) -> Start:
+        """As a warm start of a program on that mesh."""
+        size = abs(program.value_scale)
+        return Start(self.z / program.scale, self.bounds * program.scale / size, self.rows * program.row_scale / size)
+
+
+def carry(path: Trajectory, mesh: Mesh, where: Layout) -> Carried:
+    """Bring a trajectory onto another mesh of the same problem."""
+    source, old = path.program, path.program.layout
+    order = row_order(source.compiled, mesh, where)
+    z = np.zeros(where.size)
+    z[where.places], z[where.parameters] = path.places, path.parameters
+    z[where.integrals] = path.z[old.integrals]
+    points = where.points(path.places)
+    _draw(z, path, where, mesh.breaks(path.places), points)
+
+    rows = np.zeros(order.count)
+    weights = np.concatenate([i.scheme.weights for i in mesh.intervals])
+    costates = at_points(path.breaks, path.costate_modes(), points)
+    rows[: order.ends] = (-costates * weights[:, None]).ravel()
+    gauss = [k for k, i in enumerate(mesh.intervals) if i.scheme.family is Family.GAUSS]
+    rows[order.ends : order.pointwise] = costates[where.first[np.array(gauss, int) + 1] - 1].ravel()
+    measures = where.measures * where.lengths(path.places)
+    density = at_points(path.breaks, _modes(source, path.multipliers, None), points)
+    rows[order.pointwise : order.rims] = (density * measures[:, None]).ravel()
+    if order.integrals - order.rims == source.rows.integrals - source.rows.rims:
+        rows[order.rims : order.integrals] = path.row_multipliers[source.rows.rims : source.rows.integrals]
+    rows[order.integrals :] = path.row_multipliers[source.rows.integrals :]
+
+    bounds = np.zeros(where.size)
+    pushes = np.where(source.lower == source.upper, 0.0, path.bound_multipliers)  # what fixes one value stays there
+    old_measures = old.measures * old.lengths(path.places)
+    nearest = np.searchsorted((path.points[1:] + path.points[:-1]) / 2, points)  # multipliers of bounds may jump
+    for new, before in ((where.inner, old.inner), (where.controls, old.controls)):
+        bounds[new] = (pushes[before] / old_measures[:, None])[nearest] * measures[:, None]
+    bounds[where.parameters] = pushes[old.parameters]
+    return Carried(z, bounds, rows)
+
+
+def _draw(z: Array, path: Trajectory, where: Layout, breaks: Array, points: Array) -> None:
+    """Put the curve of a path into the variables of another layout."""
+    z[where.nodes] = at_points(path.breaks, path.state_modes(), breaks)
+    z[where.inner] = at_points(path.breaks, path.state_modes(), points)
+    z[where.controls] = at_points(path.breaks, path.control_modes(), points)
+
+
+def at_points(breaks: Array, modes: list[Array], places: Array) -> Array:
+    """Piecewise polynomials at places of another mesh (len(places) x components)."""
+    rounding = 4 * np.finfo(float).eps * np.abs(breaks).max()  # a point at a right end stays with what ends there
+    owner = np.clip(np.searchsorted(breaks, places - rounding, side="left") - 1, 0, len(modes) - 1)
+    left, right = breaks[owner], breaks[owner + 1]
+    local = np.clip((2 * places - left - right) / (right - left), -1.0, 1.0)
+    coefficients = side_by_side(modes)
+    shapes = np.polynomial.legendre.legvander(local, coefficients.shape[1] - 1)
+    return np.asarray((shapes[:, None, :] @ coefficients[owner])[:, 0, :])
+
+
+def distance(now: Trajectory, before: Trajectory) -> float:
+    """The largest difference of the states of two meshes of one problem, relative to each state's size."""
+    if now.states.shape[1] == 0:
+        return 0.0
+    now_at, before_at = _fractions(now), _fractions(before)
+    values = at_points(before_at[0], before.state_modes(), now_at[1])
+    differences = np.abs(values - now.states).max(axis=0)
+    return float((differences / sizes_of(now.states, now.program.scales.states)).max())
+
+
+def sizes_of(values: Array, scales: Array) -> Array:
+    """What errors of quantities (columns) are relative to: the largest value, where it is more than noise."""
+    return np.asarray(np.maximum(np.abs(values).max(axis=0, initial=0.0), NOISE * scales))
+
+
+def _fractions(path: Trajectory) -> tuple[Array, Array]:
+    """Breaks and points in a variable in which the places are 0, 1, 2, ...: free places may have moved."""
+    places = np.arange(len(path.places), dtype=float)
+    where = path.program.layout
+    return path.program.mesh.breaks(places), where.stretch + where.fractions
+
+
+def related(path: Trajectory, compiled: Compiled, mesh: Mesh, where: Layout) -> Array:
+    """All variables (SI) of a layout of a related problem: other places or parameters, the same unknowns."""
+    own = path.program.compiled.lowered.problem
+    given = {p.name: float(v) for p, v in zip(own.parameters, path.parameters, strict=True)}
+    problem = compiled.lowered.problem
+    z = np.zeros(where.size)
+    for parameter, index in zip(problem.parameters, where.parameters, strict=True):
+        z[index] = given.get(parameter.name, parameter.guess or 0.0)
+    constants = constants_of(compiled)
+    for place, index in zip(problem.places, where.places, strict=True):
+        if index not in where.parameters:
+            z[index] = number(place.tree, constants)
+    places = z[where.places]
+    _draw(z, path, where, mesh.breaks(places), where.points(places))
+    z[where.integrals] = path.z[path.program.layout.integrals]
+    return z

@@ -1,0 +1,63 @@
+"""Corners of curves where the integrand is not convex in the slope (Weierstrass, Erdmann)."""
+
+import numpy as np
+import pytest
+
+from solvers.deadline import in_seconds
+from solvers.forms.broken import _hull, with_corner
+from solvers.search.pursuit import pursue
+from solvers.search.structure import present_switches
+from solvers.solution import Verdict
+from solvers.solve import solve
+from tests.unit.solvers.problems import shape
+
+WELLS = {"functional": {"integrand": "(y'^2 - 1)^2"}, "endpoints": ["y(0) = 0", "y(3) = 1"]}
+"""Slopes 1 and -1 are the wells: the curve rises to 2 at x = 2, or falls to -1 at x = 1 (Bolza, 1904; from memory)."""
+
+
+def broken(members):
+    deadline = in_seconds(30)
+    return with_corner(pursue(shape(**members), None, deadline, meshes=3), None, deadline)
+
+
+def test_the_corner_is_where_slopes_of_the_wells_meet():
+    path = broken(WELLS).paths[-1]
+    (corner,) = present_switches(path)
+    assert min(abs(corner.place - 2), abs(corner.place - 1)) < 1e-6
+    np.testing.assert_allclose(np.abs(path.controls), 1.0, atol=1e-6)
+    assert path.value == pytest.approx(0.0, abs=1e-10)
+
+
+def test_tilted_wells_keep_the_common_tangent():
+    """L = (p^2 - 1)^2 + p/2: the tilt is the same for all curves between the ends, so the slopes stay 1 and -1."""
+    path = broken(WELLS | {"functional": {"integrand": "(y'^2 - 1)^2 + y'/2"}}).paths[-1]
+    np.testing.assert_allclose(np.abs(path.controls), 1.0, atol=1e-5)
+    assert path.value == pytest.approx(0.5, rel=1e-8)
+
+
+def test_a_maximum_has_corners_too():
+    path = broken(WELLS | {"functional": {"seek": "maximum", "integrand": "-(y'^2 - 1)^2"}}).paths[-1]
+    assert path.value == pytest.approx(0.0, abs=1e-10)
+
+
+@pytest.mark.parametrize(
+    "integrand",
+    [
+        "y'^2",  # convex
+        "(y'^2 - 1)^2 + 10*y^2",  # ever finer zigzags: no curve with one corner passes the condition itself
+    ],
+)
+def test_no_corner_where_it_does_not_help(integrand):
+    assert broken(WELLS | {"functional": {"integrand": integrand}, "endpoints": ["y(0) = 0", "y(3) = 0"]}) is None
+
+
+def test_the_least_value_is_proved_and_the_corner_said():
+    solution = solve(shape(**WELLS))
+    assert solution.verdict is Verdict.GLOBAL_MINIMUM  # no value of the integrand is below zero
+    assert any(note.startswith("Corners were found") for note in solution.notes)
+
+
+def test_the_lower_hull():
+    x = np.array([0.0, 1.0, 2.0, 3.0, 4.0])
+    np.testing.assert_array_equal(_hull(x, np.array([0.0, 1.0, 0.5, 2.0, 0.0])), [0.0, 4.0])
+    np.testing.assert_array_equal(_hull(x, x**2), x)

@@ -1,0 +1,55 @@
+"""Stationary points that are no minima."""
+
+import numpy as np
+import pytest
+
+from solvers.minimise.ipopt import Outcome, Start
+from solvers.minimise.newton import stationary_point
+from solvers.solution import Status, Verdict
+from solvers.solve import solve
+from solvers.transcription.mesh import uniform
+from tests.unit.solvers.problems import program_of, stated
+
+
+def action(end, **more):
+    """The action of an oscillator, which has its first conjugate point at pi."""
+    return stated(
+        independent={"name": "t", "from": 0, "to": end},
+        unknowns={"y": more.pop("bounds", {})},
+        dynamics=[],
+        functional={"seek": "stationary", "integrand": "(y'^2 - y^2)/2"},
+        endpoints=["y(0) = 0", f"y({end}) = 1"],
+        **more,
+    )
+
+
+def on(problem, watch=lambda iterate: False):
+    program = program_of(problem, uniform(1, 6, 6))
+    return program, stationary_point(program, Start(np.full(program.layout.size, 0.3)), watch)
+
+
+@pytest.mark.parametrize("end", [2, 4, 5])
+def test_the_action_is_stationary_on_both_sides_of_the_conjugate_point(end):
+    program, point = on(action(end))
+    assert point.outcome is Outcome.SOLVED
+    # y = sin t / sin T: closed form, the value is cot(T)/2
+    assert point.value * program.value_scale == pytest.approx(1 / np.tan(end) / 2, rel=1e-7)
+
+
+def test_a_stationary_curve_beyond_a_limit_is_none():
+    _, point = on(action(4, bounds={"within": [-0.5, None]}))  # the extremal sinks to -1.32
+    assert point.outcome is not Outcome.SOLVED
+
+
+def test_it_stops_when_it_is_told_to():
+    _, point = on(action(4), watch=lambda iterate: True)
+    assert point.outcome is Outcome.STOPPED
+
+
+def test_what_is_stationary_is_not_called_a_minimum():
+    solution = solve(action(4))
+    assert solution.verdict is Verdict.STATIONARY
+    found = {check.name: check.status for check in solution.checks}
+    assert found["conjugate points"] is Status.FAILED
+    assert found["stationarity"] is Status.PASSED
+    assert solution.value == pytest.approx(1 / np.tan(4) / 2, rel=1e-9)

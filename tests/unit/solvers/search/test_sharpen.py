@@ -1,0 +1,81 @@
+"""Bang-bang and singular problems with their switches as unknowns, against closed forms."""
+
+import numpy as np
+import pytest
+
+from solvers.deadline import in_seconds
+from solvers.search.pursuit import End, pursue
+from solvers.search.sharpen import sharpen
+from solvers.search.structure import present_switches
+from tests.unit.solvers.problems import LEAST_TIME, regulator, stated
+
+CATALYST = {
+    "unknowns": {"x1": {}, "x2": {}, "u": {"within": [0, 1]}},
+    "dynamics": ["x1' = u*(10*x2 - x1)", "x2' = u*(x1 - 10*x2) - (1 - u)*x2"],
+    "functional": {"endpoint": "x1(1) + x2(1) - 1"},
+    "endpoints": ["x1(0) = 1", "x2(0) = 0"],
+}
+SPEED_LIMIT = LEAST_TIME | {
+    "endpoints": ["x(0) = 0", "x'(0) = 0", "x(T) = 1", "x'(T) = 0"],
+    "constraints": ["-1/2 <= x' <= 1/2"],
+}
+
+
+def sharpened(problem):
+    deadline = in_seconds(40)
+    base = pursue(problem, None, deadline, meshes=3)
+    return sharpen(base, None, deadline)
+
+
+@pytest.mark.parametrize(
+    "members, value, places, precision",
+    [
+        # Pontryagin et al. (1962), The Mathematical Theory of Optimal Processes, section 5 (from memory).
+        (LEAST_TIME, 1 + np.sqrt(6), [1 + np.sqrt(3 / 2)], 1e-9),
+        # Gunn, Thomas (1965); Dolan, More, Munson (2004), ANL/MCS-TM-273, problem 14; more digits as in the catalogue.
+        (CATALYST, -0.0480556858608775, [0.1362990345945556, 0.7252301075916548], 1e-8),
+        # Closed form: ramp, cruise, ramp.
+        (SPEED_LIMIT, 2.5, [0.5, 2.0], 1e-9),
+    ],
+    ids=("bang-bang", "singular arc", "limit on a state"),
+)
+def test_switches_and_value_are_those_of_the_closed_form(members, value, places, precision):
+    found = sharpened(stated(**members))
+    assert found.end is End.CONVERGED
+    assert found.paths[-1].value == pytest.approx(value, rel=1e-9, abs=1e-10)
+    assert [switch.place for switch in present_switches(found.paths[-1])] == pytest.approx(places, abs=precision)
+    assert abs(found.paths[-1].value - value) <= found.value_error
+
+
+def test_the_singular_arc_is_smooth():
+    """u = 0.2271420827084978 all along (catalogue B25)."""
+    path = sharpened(stated(**CATALYST)).paths[-1]
+    inside = (path.points > 0.15) & (path.points < 0.7)
+    np.testing.assert_allclose(path.controls[inside, 0], 0.2271420827084978, atol=1e-5)
+
+
+@pytest.mark.parametrize(
+    "problem",
+    [
+        regulator(),  # no limits
+        regulator(unknowns={"x": {}, "u": {"within": [-50, 50]}}),  # limits far away
+    ],
+    ids=("no limits", "far limits"),
+)
+def test_nothing_to_sharpen(problem):
+    assert sharpened(problem) is None
+
+
+def test_places_stay_in_order_while_the_end_is_free():
+    """Chattering: switches crowd at the end, which must not run away in front of them (Fuller, 1963; from memory)."""
+    members = LEAST_TIME | {
+        "functional": {"integrand": "x^2"},
+        "endpoints": ["x(0) = 1", "x'(0) = 0", "x(T) = 0", "x'(T) = 0"],
+        "solve": {"points": 60},
+    }
+    problem = stated(**members)
+    deadline = in_seconds(10)
+    found = sharpen(pursue(problem, None, deadline, meshes=3), None, deadline)
+    if found is not None:
+        assert np.all(np.diff(found.paths[-1].places) > -1e-9)
+        assert found.paths[-1].value == pytest.approx(0.7640, rel=1e-3)  # the value that plain meshes tend to
