@@ -23,7 +23,7 @@ from solvers.deadline import Deadline
 from solvers.minimise.ipopt import Minimum, Outcome
 from solvers.minimise.newton import within_limits
 from solvers.search import refinement
-from solvers.search.pursuit import make_program
+from solvers.search.attempt import make_program
 from solvers.solution import Branch, BranchPoint
 from solvers.transcription.functions import with_constants
 from solvers.transcription.layout import layout

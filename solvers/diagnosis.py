@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from solvers.checks.convexity import convex_curves
-from solvers.search.pursuit import End, Pursuit
+from solvers.search.record import End, Pursuit
 from solvers.solution import Diagnosis
 
 KEPT = "The best curve so far is kept"

@@ -31,8 +31,10 @@ from solvers.forms.signs import never_negative, positive, positive_along
 from solvers.forms.slack import SLACK, rounded_functions, with_slacks
 from solvers.minimise.ipopt import FLOOR
 from solvers.problem import Continuation, Problem, Seek
+from solvers.search.attempt import first_mesh
 from solvers.search.chatter import chatter
-from solvers.search.pursuit import End, Pursuit, first_mesh, go_on, pursue
+from solvers.search.pursuit import go_on, pursue
+from solvers.search.record import End, Pursuit
 from solvers.search.sharpen import sharpen
 from solvers.search.structure import present_switches
 from solvers.solution import BranchPoint, Change, Check, Price, Progress, Slope, Solution, SwitchPlace, Verdict, Watch

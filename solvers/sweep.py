@@ -24,7 +24,9 @@ from solvers.minimise.ipopt import CLOSE, FLOOR, Minimum, Start, minimise
 from solvers.minimise.newton import stationary_point
 from solvers.problem import Problem, Seek
 from solvers.search import refinement
-from solvers.search.pursuit import SOLVED, End, Pursuit, go_on
+from solvers.search.attempt import SOLVED
+from solvers.search.pursuit import go_on
+from solvers.search.record import End, Pursuit
 from solvers.search.structure import SWITCH
 from solvers.solution import Check, MeshStep, Progress, Solution, Status, SweepPoint, Verdict, Watch
 from solvers.transcription.functions import Compiled, with_constants

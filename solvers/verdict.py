@@ -12,7 +12,7 @@ from collections.abc import Sequence
 
 from solvers.checks import FEASIBLE, FIRST_ORDER, convexity, curvature, growth, legendre, lower_bound, weierstrass
 from solvers.problem import Seek
-from solvers.search.pursuit import End
+from solvers.search.record import End
 from solvers.solution import Check, Status, Verdict
 
 _WORDS = {

@@ -22,7 +22,8 @@ from solvers.checks.sampling import Sampler
 from solvers.deadline import Deadline
 from solvers.formula.nodes import Name
 from solvers.problem import Parameter, Place, Problem, Seek
-from solvers.search.pursuit import End, Pursuit, go_on, pursue
+from solvers.search.pursuit import go_on, pursue
+from solvers.search.record import End, Pursuit
 from solvers.search.structure import SWITCH
 from solvers.solution import Status, Watch
 from solvers.transcription.evaluation import mapped

@@ -7,7 +7,8 @@ from collections.abc import Iterator
 from solvers.deadline import Deadline
 from solvers.problem import Problem
 from solvers.search.chatter import one_more
-from solvers.search.pursuit import End, Pursuit, go_on, pursue
+from solvers.search.pursuit import go_on, pursue
+from solvers.search.record import End, Pursuit
 from solvers.search.structure import SWITCH, held_rightly, present_switches, signals, softened, switches, with_switches
 from solvers.solution import Watch
 from solvers.transcription.collocation import Family

@@ -28,6 +28,7 @@ from service.assemble import assemble
 from service.spec import read
 from solvers.minimise.ipopt import Iterate, Minimum, Start, minimise
 from solvers.search import pursuit
+from solvers.search.attempt import SOLVED
 from solvers.solution import Solution
 from solvers.solve import solve
 from solvers.starts.guess import guesses
@@ -127,7 +128,7 @@ def last_program(name: str) -> Program:
 
     with mock.patch.object(pursuit, "minimise", noted):
         ours(name)
-    return next(program for program, minimum in reversed(tried) if minimum.outcome in pursuit.SOLVED)
+    return next(program for program, minimum in reversed(tried) if minimum.outcome in SOLVED)
 
 
 def from_first_guess(compiled, mesh) -> tuple[Program, Start]:
@@ -150,7 +151,7 @@ def above_floor(name: str) -> Beside:
     if took < BRIEF:
         took = min(took, timed(ours, name)[0])
         bare = min(bare, timed(minimise, program, start)[0])
-    return Beside(name, took, bare, finished=minimum.outcome in pursuit.SOLVED, note=minimum.outcome.value)
+    return Beside(name, took, bare, finished=minimum.outcome in SOLVED, note=minimum.outcome.value)
 
 
 @dataclass(frozen=True)

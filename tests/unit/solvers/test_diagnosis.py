@@ -3,7 +3,7 @@
 import pytest
 
 from solvers.diagnosis import diagnose
-from solvers.search.pursuit import End, Pursuit
+from solvers.search.record import End, Pursuit
 from solvers.solution import Finding
 from tests.unit.solvers.problems import compiled, stated
 

@@ -6,7 +6,7 @@ import pytest
 
 from solvers import checks
 from solvers.problem import Seek
-from solvers.search.pursuit import End
+from solvers.search.record import End
 from solvers.solution import Check, Status, Verdict
 from solvers.verdict import failures, judge
 

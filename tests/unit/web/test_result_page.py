@@ -8,7 +8,7 @@ from html.parser import HTMLParser
 
 import pytest
 
-from solvers.search.pursuit import End
+from solvers.search.record import End
 from solvers.solution import Verdict
 from web.caution import CAUTION
 from web.pages.progress import progress_page

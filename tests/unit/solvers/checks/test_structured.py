@@ -2,8 +2,7 @@
 
 The structures are those that `solvers.search.sharpen` would find; here they are written down, right or deliberately
 wrong, and the structured problem is solved as such: it has a solution of its own, to full accuracy, that is no
-extremal of the
-problem that was asked.
+extremal of the problem that was asked.
 """
 
 from dataclasses import replace

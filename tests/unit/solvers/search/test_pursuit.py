@@ -7,7 +7,9 @@ import numpy as np
 import pytest
 
 from solvers.deadline import in_seconds
-from solvers.search.pursuit import FIRST_DEGREE, End, first_mesh, go_on, pursue
+from solvers.search.attempt import FIRST_DEGREE, first_mesh
+from solvers.search.pursuit import go_on, pursue
+from solvers.search.record import End
 from solvers.transcription.collocation import Family
 from solvers.transcription.lowering import lower
 from tests.unit.solvers.problems import compiled, regulator, shape, solved_on, stated

@@ -4,7 +4,8 @@ import numpy as np
 import pytest
 
 from solvers.deadline import in_seconds
-from solvers.search.pursuit import End, pursue
+from solvers.search.pursuit import pursue
+from solvers.search.record import End
 from solvers.search.sharpen import sharpen
 from solvers.search.structure import present_switches
 from tests.unit.solvers.problems import LEAST_TIME, regulator, stated

@@ -1,0 +1,49 @@
+"""One attempt: a coarse mesh, a program with scales of its own, and how its minimisation ends a pursuit."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from solvers.minimise.ipopt import Minimum, Outcome
+from solvers.search.record import End
+from solvers.transcription.collocation import Family
+from solvers.transcription.functions import Compiled
+from solvers.transcription.layout import Layout
+from solvers.transcription.mesh import Mesh, interval, uniform
+from solvers.transcription.program import Program, transcribe
+from solvers.transcription.scaling import Scales, find_row_sizes, find_scales
+
+Array = NDArray[np.float64]
+
+FIRST_INTERVALS = 8
+FIRST_DEGREE = 4
+SOLVED = (Outcome.SOLVED, Outcome.ACCEPTABLE)
+
+
+def first_mesh(stretches: int, count: int = FIRST_INTERVALS) -> Mesh:
+    """A coarse mesh; its outermost intervals have Gauss points: no end is touched, none is favoured."""
+    each = count if stretches == 1 else max(count // stretches, 2 if stretches <= count else 1)
+    mesh = uniform(stretches, each, FIRST_DEGREE)
+    first, *inner, last = mesh.intervals
+    return Mesh((
+        interval(first.stretch, 0.0, first.width, Family.GAUSS, FIRST_DEGREE),
+        *inner,
+        interval(last.stretch, last.start, 1.0, Family.GAUSS, FIRST_DEGREE),
+    ))  # fmt: skip
+
+
+def make_program(compiled: Compiled, mesh: Mesh, where: Layout, z: Array, before: Scales | None = None) -> Program:
+    """A program whose scales come from values (SI) on its mesh, and do not fall far below those of the mesh before."""
+    scales = find_scales(compiled, where, z, before)
+    return transcribe(compiled, mesh, where, scales, find_row_sizes(compiled, where, scales, z))
+
+
+def end_of(minimum: Minimum) -> End:
+    return {
+        Outcome.INFEASIBLE: End.INFEASIBLE,
+        Outcome.UNBOUNDED: End.UNBOUNDED,
+        Outcome.UNDEFINED: End.UNDEFINED,
+        Outcome.TIME: End.TIME,
+        Outcome.STOPPED: End.STOPPED,
+    }.get(minimum.outcome, End.FAILED)

@@ -1,0 +1,126 @@
+"""The first mesh that is solved, or why there is none: from guesses and settings in turn, or from a related curve."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+
+from solvers.checks.convexity import convex_curves
+from solvers.minimise.ipopt import LEAST_SQUARES_MULTIPLIERS, Minimum, Outcome, Start
+from solvers.minimise.undefined import undefined_places
+from solvers.search.attempt import FIRST_INTERVALS, SOLVED, end_of, first_mesh, make_program
+from solvers.search.conflict import VIOLATED, curve_of_least_violation, least_violation_of
+from solvers.search.effort import Minimiser
+from solvers.search.record import End, Pursuit
+from solvers.starts.guess import guesses
+from solvers.transcription.layout import layout
+from solvers.transcription.mesh import Mesh
+from solvers.transcription.program import Program
+from solvers.transcription.trajectory import Trajectory, related
+
+OUTGROWN = 30.0
+"""How much larger than its first size a quantity may end before its size counts as wrong."""
+DOUBTFUL_ITERATIONS = 200
+"""Iterations of further tries once one start has led to a conflict."""
+FEW_ITERATIONS = 100
+"""Iterations within which a solve from a related trajectory must be through: it starts near its end."""
+ATTEMPTS: tuple[dict[str, Any], ...] = (
+    {},
+    {"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 0.1} | LEAST_SQUARES_MULTIPLIERS,
+    {"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 1e-3, "ipopt.nlp_scaling_method": "gradient-based"},
+)
+"""Settings of the minimiser that are tried in turn on the first mesh."""
+
+
+def begin(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Program, Minimum] | None:
+    """The first mesh that is solved, from the first guess and settings that lead somewhere."""
+    compiled = pursuit.compiled
+    stretches = len(pursuit.problem.places) - 1
+    ends: list[End] = []
+    conflict = False
+    for attempt, options in enumerate(ATTEMPTS):
+        mesh = first_mesh(stretches, FIRST_INTERVALS * (1 if attempt < 2 else 2))
+        where = layout(compiled, mesh)
+        for guess in guesses(compiled, mesh, where)[: 2 if attempt else 3]:
+            program = make_program(compiled, mesh, where, guess.z)
+            doubtful = {"ipopt.max_iter": DOUBTFUL_ITERATIONS} if End.INFEASIBLE in ends else {}
+            minimum = minimise_(program, Start(guess.z / program.scale), options | doubtful)
+            if minimum.outcome is Outcome.FAILED and _outgrown(minimum):
+                z = minimum.z * program.scale
+                program = make_program(compiled, mesh, where, z)
+                minimum = minimise_(program, Start(z / program.scale), options | doubtful)
+            if minimum.outcome in SOLVED:
+                return program, minimum
+            ends.append(end_of(minimum))
+            if ends[-1] in (End.STOPPED, End.TIME):
+                pursuit.end = ends[-1]
+                return None
+        if attempt == 0 and End.INFEASIBLE in ends:  # to find out is quicker than to fail with other settings
+            begun = _after_least_violation(pursuit, minimise_)
+            conflict = pursuit.end is End.INFEASIBLE
+            if begun is not None or pursuit.end in (End.STOPPED, End.TIME):
+                return begun
+            if conflict and convex_curves(pursuit.problem):
+                return None
+    if set(ends) == {End.UNDEFINED}:
+        mesh = first_mesh(stretches)
+        where = layout(compiled, mesh)
+        z = guesses(compiled, mesh, where)[0].z
+        pursuit.end, pursuit.findings = End.UNDEFINED, undefined_places(compiled, where, z)
+        return None
+    if End.UNBOUNDED in ends:
+        pursuit.end = End.UNBOUNDED
+        return None
+    if conflict:
+        pursuit.end = End.INFEASIBLE
+        return None
+    return _after_least_violation(pursuit, minimise_)
+
+
+def begin_from(
+    pursuit: Pursuit, minimise_: Minimiser, start: Trajectory, mesh: Mesh | None
+) -> tuple[Program, Minimum] | None:
+    """The first mesh, from a trajectory of a related form of the problem."""
+    mesh = mesh or first_mesh(len(pursuit.problem.places) - 1)
+    where = layout(pursuit.compiled, mesh)
+    z = related(start, pursuit.compiled, mesh, where)
+    program = make_program(pursuit.compiled, mesh, where, z)
+    z = z / program.scale
+    settings: tuple[dict[str, Any], ...] = ({"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 1e-3}, {})
+    for options in settings:
+        minimum = minimise_(program, Start(z), options | {"ipopt.max_iter": FEW_ITERATIONS})
+        if minimum.outcome in SOLVED:
+            return program, minimum
+        pursuit.end = end_of(minimum)
+        if pursuit.end in (End.STOPPED, End.TIME):
+            break
+    return None
+
+
+def _after_least_violation(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Program, Minimum] | None:
+    """Find out whether any curve satisfies the conditions; start again from one that does."""
+    program, least = least_violation_of(pursuit, minimise_)
+    if least.minimum.outcome not in SOLVED:
+        pursuit.end = end_of(least.minimum)
+        return None
+    if least.total > VIOLATED:
+        pursuit.end, pursuit.findings = End.INFEASIBLE, least.findings
+        pursuit.nearest = curve_of_least_violation(program, least)
+        return None
+    minimum = minimise_(program, Start(least.z), ATTEMPTS[1])
+    if minimum.outcome in SOLVED:
+        return program, minimum
+    pursuit.end = End.UNBOUNDED if _runs_away(program, minimum) else end_of(minimum)
+    return None
+
+
+def _outgrown(minimum: Minimum) -> bool:
+    """Whether quantities are so much larger than the first guess let expect that rounding stopped the minimiser."""
+    reached = max(abs(minimum.value), float(np.abs(minimum.z).max(initial=0.0)))
+    return bool(OUTGROWN < reached < np.inf)
+
+
+def _runs_away(program: Program, minimum: Minimum) -> bool:
+    """Whether the value has grown beyond all sizes of the problem."""
+    return not np.isfinite(minimum.value) or minimum.value < -1e6

@@ -1,0 +1,101 @@
+"""The minimiser on behalf of a pursuit: it passes signs of life on, keeps count and knows the deadline."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from solvers.deadline import Deadline
+from solvers.minimise.elastic import LeastViolation, least_violation
+from solvers.minimise.ipopt import WIDE, Iterate, Minimum, Outcome, Start, minimise
+from solvers.minimise.newton import stationary_point
+from solvers.problem import Seek
+from solvers.search.record import Pursuit
+from solvers.solution import MeshStep, Progress, Watch
+from solvers.transcription.program import Program
+
+Array = NDArray[np.float64]
+
+MANY_STATES = 24
+"""States at each node beyond which a program is wide."""
+
+
+class Minimiser:
+    """Minimises programs, passes signs of life on and keeps count."""
+
+    def __init__(self, pursuit: Pursuit, watch: Watch | None, deadline: Deadline) -> None:
+        self.pursuit, self.watch, self.deadline = pursuit, watch, deadline
+        self.stopped = False
+
+    def __call__(self, program: Program, start: Start, options: dict[str, Any] | None = None) -> Minimum:
+        if self.pursuit.problem.seek is Seek.STATIONARY:
+            minimum = stationary_point(program, start, self._hear(program))
+            self.pursuit.last = (program, minimum)
+            if minimum.outcome is not Outcome.FAILED:
+                return minimum
+        if program.compiled.point.states > MANY_STATES:
+            options = WIDE | (options or {})
+        minimum = minimise(program, start, deadline=self.deadline, watch=self._hear(program), options=options)
+        self.pursuit.last = (program, minimum)
+        return minimum
+
+    def relax(self, program: Program, z: Array) -> LeastViolation:
+        """The curve that violates the conditions least."""
+        return least_violation(program, z, deadline=self.deadline, watch=self._hear(program))
+
+    def _hear(self, program: Program) -> Callable[[Iterate], bool]:
+        mesh = program.mesh
+        count = len(self.pursuit.steps) + 1
+
+        def hear(iterate: Iterate) -> bool:
+            self.pursuit.iterations += 1
+            if self.watch is None:
+                return False
+            self.stopped = self.stopped or self.watch(
+                Progress(
+                    "iteration",
+                    count,
+                    self.pursuit.iterations,
+                    len(mesh.intervals),
+                    mesh.points,
+                    iterate.value * program.value_scale,
+                    iterate.infeasibility,
+                )
+            )
+            return self.stopped
+
+        return hear
+
+    def record(self, program: Program, minimum: Minimum, value: float, error: float) -> None:
+        mesh = program.mesh
+        low, high = mesh.degrees()
+        self.pursuit.steps.append(
+            MeshStep(
+                len(mesh.intervals),
+                mesh.points,
+                low,
+                high,
+                value,
+                error,
+                minimum.iterations,
+                minimum.seconds + minimum.set_up,
+            )
+        )
+        if self.watch is not None:
+            breaks = self.pursuit.paths[-1].breaks
+            self.stopped = self.stopped or self.watch(
+                Progress(
+                    "mesh",
+                    len(self.pursuit.steps),
+                    self.pursuit.iterations,
+                    len(mesh.intervals),
+                    mesh.points,
+                    value,
+                    None,
+                    error,
+                    tuple(float(b) for b in breaks),
+                )
+            )

@@ -1,0 +1,72 @@
+"""Whether to stop refining: the errors of value and curve, and curves that tear."""
+
+from __future__ import annotations
+
+from itertools import pairwise
+
+import numpy as np
+
+from solvers.minimise.ipopt import FLOOR
+from solvers.search import refinement
+from solvers.search.record import End, Pursuit
+from solvers.solution import Finding
+from solvers.transcription.lowering import primed
+from solvers.transcription.trajectory import distance
+
+CURVE_ROOM = 100.0
+"""How much more than the tolerance the curve may still have moved: a switch that hardly matters moves freely."""
+LEAST_GAIN = 0.05
+"""How much of the last change of the value counts as its error at the least, however much the mesh has improved."""
+TORN_MESHES = 4
+"""So many meshes in a row ..."""
+TORN_ERROR = 0.05
+"""... with such an error at one place that hardly falls, although it is cut finer each time: the curve jumps there."""
+
+
+def estimate_errors(pursuit: Pursuit, found: refinement.Estimate) -> None:
+    """Errors of value and curve from the last two meshes: their difference, and how much the mesh has improved since.
+
+    The difference alone is the error of the mesh before; local errors that fell by a factor f let the value's error
+    fall at least by f.
+    """
+    now, before = pursuit.paths[-1], pursuit.paths[-2]
+    last = pursuit.steps[-2].error or 0.0
+    gain = float(np.clip(found.worst / last, LEAST_GAIN, 1.0)) if last > 0 else 1.0
+    size = max(abs(now.value), abs(now.program.value_scale))
+    change = abs(now.value - before.value)
+    pursuit.value_error = 2 * gain * change + size * found.worst**2 + FLOOR * size
+    pursuit.curve_error = gain * distance(now, before) + found.worst
+
+
+def settled(pursuit: Pursuit) -> End | None:
+    """Whether to stop refining."""
+    tolerance = pursuit.problem.options.tolerance
+    errors = [step.error or 0.0 for step in pursuit.steps]
+    value_met = pursuit.value_met
+    if value_met and errors[-1] <= tolerance and pursuit.curve_error <= tolerance:
+        return End.CONVERGED
+    if len(errors) > TORN_MESHES and min(errors[-TORN_MESHES:]) > max(TORN_ERROR, 0.5 * errors[-TORN_MESHES - 1]):
+        pursuit.findings = _jump(pursuit)
+        if pursuit.findings:
+            return End.TORN
+    stuck = len(errors) > 6 and min(errors[-6:]) > 0.3 * errors[-7]
+    slow = len(errors) > 2 and min(errors[-2:]) > 0.5 * errors[-3] and pursuit.curve_error <= CURVE_ROOM * tolerance
+    if value_met and (stuck or (slow and pursuit.value_met_before)):
+        return End.SETTLED
+    pursuit.value_met_before = value_met
+    return None
+
+
+def _jump(pursuit: Pursuit) -> tuple[Finding, ...]:
+    """Which state jumps where: over an ever narrower interval at one place on each of the last meshes."""
+    edges = []
+    for path, found in zip(pursuit.paths[-TORN_MESHES:], pursuit.estimates[-TORN_MESHES:], strict=True):
+        worst = int(np.argmax(found.errors))
+        edges.append(path.breaks[worst : worst + 2])
+    if not all(after[0] >= before[0] - 1e-12 and after[1] <= before[1] + 1e-12 for before, after in pairwise(edges)):
+        return ()
+    inside = slice(*path.program.layout.first[worst : worst + 2])
+    rise = np.ptp(np.vstack([path.nodes[worst : worst + 2], path.states[inside]]), axis=0)
+    largest = int(np.argmax(rise / np.maximum(np.abs(path.states).max(axis=0), 1e-300)))
+    name = primed(pursuit.compiled.lowered.states[largest])
+    return (Finding(name, "", None, float(edges[-1].mean()), "jumps"),)
