@@ -12,7 +12,7 @@ import json
 import os
 import sys
 from collections.abc import Iterator, Mapping
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -73,11 +73,12 @@ def serve(host: str | None, port: int | None, data: Path | None, workers: int | 
     if not settings.loopback:
         click.echo(f"Warning: open to every machine that reaches {settings.host}; there are no keys.", err=True)
     try:
-        run(settings, announce=lambda address: click.echo(f"Curvewright serves at {address} (stop with Ctrl-C)"))
+        # Started in the background by a shell without a terminal, the interrupt ends the server without an exception.
+        with suppress(KeyboardInterrupt):
+            run(settings, announce=lambda address: click.echo(f"Curvewright serves at {address} (stop with Ctrl-C)"))
     except (ListenError, StoreError) as error:
         raise click.ClickException(str(error)) from None
-    except KeyboardInterrupt:
-        click.echo("Stopped.", err=True)
+    click.echo("Stopped.", err=True)
 
 
 @main.command()

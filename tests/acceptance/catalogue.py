@@ -13,7 +13,6 @@ CATALOGUE: dict[str, Case] = {
 
 KNOWN_FAILURES: dict[tuple[str, str], str] = {
     ("A56a", "verdict"): "the tip of the fin is singular, and the second variation is not decided there",
-    ("C06", "verdict"): "a weakly determined rate: the second variation along it is below the margin of the check",
 }
 """Promises that are not kept yet: (case, promise) -> reason.  A promise is "value", "error", "verdict" or "figures"."""
 

@@ -213,6 +213,7 @@ def test_a_sample_is_one_click_away(open_page):
     page.goto("/")
     page.get_by_role("button", name="Solve now: Hanging shape of a hose").click()
     page.wait_for_url("**/runs/*", timeout=TIMEOUT)
+    page.get_by_text("local minimum").first.wait_for(timeout=TIMEOUT)  # until then the page may load itself anew
     page.goto("/runs")
     page.get_by_role("link", name="Hanging shape of a hose").first.wait_for()
 

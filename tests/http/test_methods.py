@@ -30,16 +30,24 @@ ADDRESSES = {
     "/api/v1/schema/result.json": "GET, HEAD, OPTIONS",
 }
 
+SOME_RUNS_ONLY = {
+    "/api/v1/runs/{id}/sweep.csv": "GET, HEAD, OPTIONS",
+    "/api/v1/runs/{id}/observations.csv": "GET, HEAD, OPTIONS",
+}
+"""What a straight line has not: it is neither swept nor fitted."""
 
-@pytest.mark.parametrize("address", ADDRESSES)
+ALL = ADDRESSES | SOME_RUNS_ONLY
+
+
+@pytest.mark.parametrize("address", ALL)
 def test_every_path_lists_all_its_methods(client, line, address):
     path = address.format(id=line["id"])
     refused = client.request("PATCH", path)
     assert refused.status_code == 405
-    assert refused.headers["allow"] == ADDRESSES[address]
+    assert refused.headers["allow"] == ALL[address]
     asked = client.request("OPTIONS", path)
     assert asked.status_code == 204
-    assert asked.headers["allow"] == ADDRESSES[address]
+    assert asked.headers["allow"] == ALL[address]
 
 
 @pytest.mark.parametrize("address", [address for address, methods in ADDRESSES.items() if "GET" in methods])
@@ -49,6 +57,15 @@ def test_head_is_get_without_a_body(client, line, address):
     assert head.status_code == get.status_code == 200
     assert head.content == b""
     assert head.headers["content-type"] == get.headers["content-type"]
+
+
+@pytest.mark.parametrize("address", SOME_RUNS_ONLY)
+def test_head_is_get_also_where_there_is_nothing(client, line, address):
+    path = address.format(id=line["id"])
+    head, get = client.head(path), client.get(path)
+    assert head.status_code == get.status_code in (409, 422)
+    assert head.content == b""
+    assert get.json()["detail"]
 
 
 def test_head_of_a_running_stream_ends_at_once(client, post, slow_document):
@@ -61,5 +78,5 @@ def test_head_of_a_running_stream_ends_at_once(client, post, slow_document):
 
 def test_the_addresses_above_are_all_that_are_described(client):
     described = set(client.get("/api/v1/openapi.json").json()["paths"])
-    known = {address.replace("table.csv", "table.{suffix}") for address in ADDRESSES} | set(ADDRESSES)
+    known = {address.removesuffix("csv") + "{suffix}" for address in ALL if address.endswith(".csv")} | set(ALL)
     assert described <= known
