@@ -39,11 +39,6 @@ class Extremes:
         """The largest absolute value."""
         return max(abs(self.lowest), abs(self.highest))
 
-    @property
-    def largest_at(self) -> float:
-        """Where the absolute value is largest."""
-        return self.highest_at if abs(self.highest) >= abs(self.lowest) else self.lowest_at
-
 
 def extremes(result: Mapping[str, Any], derivatives: int = HIGHEST_DERIVATIVE) -> tuple[Extremes, ...]:
     """One line for every unknown and each of its derivatives, in the user's units; () where there is no curve.

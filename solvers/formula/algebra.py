@@ -99,22 +99,11 @@ def multiply(factors: Iterable[Node]) -> Node:
     return product_of([(factor, 1) for factor in factors])
 
 
-def divide(over: Node, under: Node) -> Node:
-    """The quotient, tidied like a product."""
-    return product_of([(over, 1), (under, -1)])
-
-
 def negative(tree: Node) -> Node:
     """The tree with the other sign; that of a sum is turned term by term."""
     if isinstance(tree, Sum):
         return add(negative(term.node()) for term in _terms(tree))
     return multiply([Number(-1.0, "-1"), tree])
-
-
-def raise_to(base: Node, exponent: Node) -> Node:
-    """The power, tidied like a product where the exponent is a number."""
-    number = rational(exponent)
-    return Power(base, exponent) if number is None else product_of([(base, number)])
 
 
 def product_of(factors: Iterable[tuple[Node, Exact]]) -> Node:

@@ -11,7 +11,6 @@ from hypothesis import strategies as st
 
 from service.units import _ALONE, _PREFIXES, _WITH_PREFIX, BASE, PURE, parse_quantity, parse_unit
 from solvers.unit_text import UnitTextError, merged, raised, read_symbols, write_symbols
-from solvers.units import PLAIN, Unit, derivative_unit
 
 REGISTRY = pint.UnitRegistry()
 NAMES = {"Ω": "ohm", "Ohm": "ohm", "°": "degree", "%": "percent", "‰": "permille", "d": "day", "t": "metric_ton"}
@@ -101,27 +100,6 @@ def test_the_unit_of_a_product_is_the_product_of_units(one, other):
     assert together.factor == pytest.approx(first.factor * second.factor)
     assert together.dimension == first.times(second).dimension
     assert parse_unit(write_symbols(raised(one, Fraction(-2)))).dimension == first.power(Fraction(-2)).dimension
-
-
-@pytest.mark.parametrize(
-    ("unit", "by", "order", "expected"),
-    [
-        (Unit("m"), Unit("s"), 2, Unit("m/s^2")),
-        (Unit("mm", 1e-3), Unit("s"), 3, Unit("mm/s^3", 1e-3)),
-        (Unit("deg", math.pi / 180), Unit("s"), 1, Unit("deg/s", math.pi / 180)),
-        (Unit("m"), Unit("m"), 1, Unit("")),
-        (Unit("m"), Unit("m"), 2, Unit("1/m")),
-        (Unit("m/s"), Unit("s"), 1, Unit("m/s^2")),
-        (Unit("W/(m*K)"), Unit("min", 60.0), 1, Unit("W/m/K/min", 1 / 60)),
-        (Unit("W/(m*K)"), Unit("s"), 0, Unit("W/(m*K)")),
-        (Unit("mm", 1e-3), PLAIN, 2, Unit("mm", 1e-3)),
-        (PLAIN, Unit("s"), 1, Unit("1/s")),
-    ],
-)
-def test_units_of_derivatives(unit, by, order, expected):
-    found = derivative_unit(unit, by, order)
-    assert found.text == expected.text
-    assert found.factor == pytest.approx(expected.factor)
 
 
 @pytest.mark.parametrize(

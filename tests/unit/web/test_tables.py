@@ -168,7 +168,7 @@ def test_extremes_are_found_between_the_nodes_and_on_both_sides_of_a_jump(hose, 
     x, y = table(hose, rows=200_000).rows.T
     assert lines["y"].lowest <= y.min() and lines["y"].lowest == pytest.approx(y.min(), abs=1e-9)
     assert lines["y"].lowest_at == pytest.approx(x[y.argmin()], abs=1e-4)
-    assert (lines["y"].largest, lines["y"].largest_at) == (pytest.approx(2.4), 3.0)
+    assert (lines["y"].largest, lines["y"].highest_at) == (pytest.approx(2.4), 3.0)
     jump = {line.name: line for line in extremes(stage)}["a"]
     assert (jump.lowest, jump.highest) == (pytest.approx(-2000), pytest.approx(2000))
 
