@@ -66,16 +66,23 @@ class NecessaryConditions:
     notes: tuple[str, ...]
 
 
+def in_time(deadline: float | None) -> Callable[[], None]:
+    """What raises TimeoutError once `time.monotonic()` has passed the deadline."""
+
+    def check() -> None:
+        if deadline is not None and time.monotonic() > deadline:
+            raise TimeoutError
+
+    return check
+
+
 def necessary_conditions(problem: Problem, deadline: float | None = None) -> NecessaryConditions:
     """The necessary conditions of `problem`.
 
     What is too large to be read, or is not done when `time.monotonic()` passes `deadline`, is left out with a note.
     """
 
-    def check() -> None:
-        if deadline is not None and time.monotonic() > deadline:
-            raise TimeoutError
-
+    check = in_time(deadline)
     found: list[Necessary] = []
     notes: list[str] = []
     try:

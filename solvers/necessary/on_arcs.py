@@ -9,7 +9,6 @@ Applied Optimal Control, section 3.7.                                           
 
 from __future__ import annotations
 
-import time
 from collections.abc import Callable, Iterator
 from dataclasses import replace
 from itertools import pairwise
@@ -25,6 +24,7 @@ from solvers.necessary.conditions import (
     NecessaryConditions,
     derive,
     extreme_controls,
+    in_time,
     left_out,
     limits_left_out,
 )
@@ -36,10 +36,7 @@ ALONG = ("Lagrangian", "Hamiltonian", "Euler-Lagrange", "costate", "stationarity
 def necessary_on_arcs(problem: Problem, deadline: float | None = None) -> NecessaryConditions:
     """The conditions along every arc and at the junctions; too long ones and what comes too late are left out."""
 
-    def check() -> None:
-        if deadline is not None and time.monotonic() > deadline:
-            raise TimeoutError
-
+    check = in_time(deadline)
     found: list[Necessary] = []
     notes: list[str] = []
     try:
