@@ -14,18 +14,18 @@ from functools import lru_cache
 from typing import Any
 
 from service.complaints import closest
-from solvers.unit_text import Symbols, UnitTextError, merged, raised, read_symbols, write_symbols
+from solvers.unit_text import Exponent, Symbols, UnitTextError, merged, raised, read_symbols, write_symbols
 from solvers.units import Unit
 
-Dimension = tuple[Fraction, ...]
+Dimension = tuple[Exponent, ...]
 """Exponents of m, kg, s, A, K, mol, cd."""
 
 BASE = ("m", "kg", "s", "A", "K", "mol", "cd")
-PURE: Dimension = (Fraction(0),) * len(BASE)
+PURE: Dimension = (0,) * len(BASE)
 
 
 def _dimension(**exponents: int) -> Dimension:
-    return tuple(Fraction(exponents.get(name, 0)) for name in BASE)
+    return tuple(exponents.get(name, 0) for name in BASE)
 
 
 # BIPM (2019), The International System of Units, 9th edition, tables 2, 4, 7 and 8 (from memory).
@@ -68,15 +68,15 @@ class Measure:
     dimension: Dimension = PURE
     factor: float = 1.0
 
-    def times(self, other: Measure, exponent: Fraction = Fraction(1)) -> Measure:
+    def times(self, other: Measure, exponent: Exponent = 1) -> Measure:
         """The unit of a product with the other to some power."""
         if not other.symbols and other.dimension == PURE and other.factor == 1:
             return self
         return _product(self, other, exponent)
 
-    def power(self, exponent: Fraction) -> Measure:
+    def power(self, exponent: Exponent) -> Measure:
         """The unit of a power."""
-        return Measure().times(self, exponent)
+        return ONE.times(self, exponent)
 
     @property
     def computable(self) -> bool:
@@ -102,13 +102,7 @@ class Measure:
     @property
     def without_angles(self) -> Measure:
         """Without deg and the like beside other units (`m*deg` is told in m), but for angles per time."""
-        kept = ONE
-        for name, exponent in self.symbols:
-            factor, dimension = _meaning(name)
-            if dimension != PURE:
-                kept = kept.times(Measure(((name, Fraction(1)),), dimension, factor), exponent)
-        rate = all(not power for name, power in zip(BASE, kept.dimension, strict=True) if name != "s")
-        return self if rate else kept
+        return _without_angles(self)
 
     @property
     def ambiguous(self) -> bool:
@@ -118,7 +112,7 @@ class Measure:
 
 
 @lru_cache(maxsize=4096)
-def _product(one: Measure, other: Measure, exponent: Fraction) -> Measure:
+def _product(one: Measure, other: Measure, exponent: Exponent) -> Measure:
     dimension = tuple(a + b * exponent for a, b in zip(one.dimension, other.dimension, strict=True))
     symbols = merged(one.symbols + raised(other.symbols, exponent))
     try:
@@ -128,16 +122,33 @@ def _product(one: Measure, other: Measure, exponent: Fraction) -> Measure:
     return Measure(symbols, dimension, factor)
 
 
+@lru_cache(maxsize=1024)
+def _without_angles(measure: Measure) -> Measure:
+    kept = ONE
+    for name, exponent in measure.symbols:
+        factor, dimension = _meaning(name)
+        if dimension != PURE:
+            kept = kept.times(Measure(((name, 1),), dimension, factor), exponent)
+    rate = all(not power for name, power in zip(BASE, kept.dimension, strict=True) if name != "s")
+    return measure if rate else kept
+
+
 ONE = Measure()
 """The unit of pure numbers."""
 
 
+def ratio(power: float, finest: int = 1000) -> Exponent:
+    """The nearest ratio with a denominator up to `finest`."""
+    return int(power) if power == int(power) else Fraction(power).limit_denominator(finest)
+
+
+@lru_cache(maxsize=1024)
 def parse_unit(text: str) -> Measure:
     """The unit that a text such as `kg*m/s^2`, `1/s` or `deg` means.  Raises UnitTextError."""
-    total = Measure()
+    total = ONE
     for name, exponent in read_symbols(text):
         factor, dimension = _meaning(name)
-        total = total.times(Measure(((name, Fraction(1)),), dimension, factor), exponent)
+        total = total.times(Measure(((name, 1),), dimension, factor), exponent)
         if not total.computable:
             raise UnitTextError(f"the unit “{text}” is beyond the range of numbers", "choose smaller powers")
     return total
@@ -183,7 +194,7 @@ def _in_pint(name: str) -> tuple[float, Dimension] | None:
         return None
     dimension = list(PURE)
     for base, power in powers.items():
-        dimension[_PINT_BASE[base]] = Fraction(power).limit_denominator(12)
+        dimension[_PINT_BASE[base]] = ratio(power, 12)
     return float(factor), tuple(dimension)
 
 

@@ -5,8 +5,12 @@ from __future__ import annotations
 import re
 from collections.abc import Iterable
 from fractions import Fraction
+from functools import lru_cache
 
-Symbols = tuple[tuple[str, Fraction], ...]
+Exponent = int | Fraction
+"""Mostly whole, and whole numbers are much cheaper to add, compare and look up."""
+
+Symbols = tuple[tuple[str, Exponent], ...]
 """Names of units with their exponents, in the order written: `kg*m/s^2` is kg 1, m 1, s -2."""
 
 LARGEST_EXPONENT = 12
@@ -29,19 +33,20 @@ def read_symbols(text: str) -> Symbols:
     return _Reader(text).whole() if text.strip() else ()
 
 
-def merged(symbols: Iterable[tuple[str, Fraction]]) -> Symbols:
+def merged(symbols: Iterable[tuple[str, Exponent]]) -> Symbols:
     """Each symbol once, with the sum of its exponents; what cancels is gone."""
-    total: dict[str, Fraction] = {}
+    total: dict[str, Exponent] = {}
     for name, exponent in symbols:
-        total[name] = total.get(name, Fraction(0)) + exponent
+        total[name] = total.get(name, 0) + exponent
     return tuple((name, exponent) for name, exponent in total.items() if exponent)
 
 
-def raised(symbols: Symbols, exponent: Fraction) -> Symbols:
+def raised(symbols: Symbols, exponent: Exponent) -> Symbols:
     """The symbols of a power."""
     return tuple((name, power * exponent) for name, power in symbols if exponent)
 
 
+@lru_cache(maxsize=1024)
 def write_symbols(symbols: Symbols) -> str:
     """`kg*m/s^2`; "" for no symbols.  Divisors follow one by one, as the reader takes them."""
     above = [_power(name, exponent) for name, exponent in symbols if exponent > 0]
@@ -49,7 +54,7 @@ def write_symbols(symbols: Symbols) -> str:
     return "/".join(["*".join(above) or "1", *below]) if symbols else ""
 
 
-def _power(name: str, exponent: Fraction) -> str:
+def _power(name: str, exponent: Exponent) -> str:
     if exponent == 1:
         return name
     return f"{name}^{exponent}" if exponent.denominator == 1 else f"{name}^({exponent})"
@@ -100,7 +105,7 @@ class _Reader:
         """product = power (('*' | '/') power)*"""
         symbols = self.power()
         while self.next in ("*", "/"):
-            sign = Fraction(-1 if self.take() == "/" else 1)
+            sign = -1 if self.take() == "/" else 1
             symbols += raised(self.power(), sign)
         return symbols
 
@@ -118,7 +123,7 @@ class _Reader:
         if len(digits) > 2 or int(digits) > LARGEST_EXPONENT:
             limit = f"the exponent {digits[:9]} is too large; the limit is {LARGEST_EXPONENT}"
             raise UnitTextError(limit, "write powers as in m^2 or s^-1")
-        return raised(symbols, Fraction(-int(digits) if minus else int(digits)))
+        return raised(symbols, -int(digits) if minus else int(digits))
 
     def primary(self) -> Symbols:
         """primary = name | '1' | '(' product ')'"""
@@ -136,4 +141,4 @@ class _Reader:
         if not token or token in "*/^)-":
             where = f"“{token}”" if token else "the end"
             raise UnitTextError(f"a unit is missing before {where} in “{self.text}”", "write units as in m/s^2 or 1/s")
-        return ((token, Fraction(1)),)
+        return ((token, 1),)

@@ -12,7 +12,7 @@ from service.assemble.domain import Values, literal, value_of
 from service.assemble.formulas import Expression, Formula
 from service.assemble.quoting import quoted
 from service.complaints import Complaint
-from service.units import ONE, PURE, Measure
+from service.units import ONE, PURE, Measure, ratio
 from solvers.formula.nodes import At, Call, Lookup, Name, Negative, Node, Number, Power, Product, Sum, walk
 from solvers.formula.printer import text
 
@@ -77,7 +77,7 @@ class Units:
         sort, by = self.sorts[name], self.sorts[self.independent]
         if not order:
             return sort
-        return Sort(sort.measure.times(by.measure, Fraction(-order)), sort.checked and by.checked)
+        return Sort(sort.measure.times(by.measure, -order), sort.checked and by.checked)
 
     def sort_of_all(self, formulas: Sequence[Expression]) -> Sort:
         """The sort of an abbreviation that may have a formula for each arc: they have to be of one kind and unit."""
@@ -131,7 +131,7 @@ class Units:
         total = Sort(ONE, bare=True)
         for factor, over in zip(node.factors, node.over, strict=True):
             part = self.sort(factor, formula)
-            measure = total.measure.times(part.measure, Fraction(-1 if over else 1))
+            measure = total.measure.times(part.measure, -1 if over else 1)
             zero = total.zero or (part.zero and not over)
             mixed = total.mixed or part.mixed
             total = Sort(measure, total.checked and part.checked, total.bare and part.bare, zero, mixed)
@@ -154,7 +154,7 @@ class Units:
             return UNCHECKED
         if abs(value) > 100:
             return Sort(ONE, checked=False)
-        measure = base.measure.power(Fraction(value).limit_denominator(1000))
+        measure = base.measure.power(ratio(value))
         return Sort(measure, base.checked, bare, mixed=base.mixed)
 
     def call(self, node: Call, formula: Formula) -> Sort:
@@ -184,7 +184,7 @@ class Units:
         ):
             self.fits(argument, wanted, f"the argument {name} of {node.table.name}", formula)
             if order:
-                measure = total.measure.times(wanted.measure, Fraction(-order))
+                measure = total.measure.times(wanted.measure, -order)
                 total = Sort(measure, total.checked and wanted.checked)
         return total
 

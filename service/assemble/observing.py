@@ -5,7 +5,6 @@ from __future__ import annotations
 import math
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
-from fractions import Fraction
 
 from service.assemble.declared import beyond
 from service.assemble.dimensions import Sort, Units
@@ -81,7 +80,7 @@ def _read(part: ObservationPart, of: Expression, place: str, units: Units, by: f
             units.complaints.append(beyond(f"{place}/points/{index}"))
         points.append(point)
     weighted = points[0][2] is not None
-    squares = ONE if weighted else measure.power(Fraction(2))
+    squares = ONE if weighted else measure.power(2)
     return Readings(of, unit, squares, tuple(points), place)
 
 

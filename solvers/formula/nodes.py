@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, replace
+from operator import attrgetter
+from typing import Any, NamedTuple
 
 from solvers.tables.table import Table
 
@@ -14,8 +16,7 @@ FUNCTIONS: dict[str, int] = {
 """Built-in functions and how many arguments they take (`min` and `max` take two or more)."""
 
 
-@dataclass(frozen=True, slots=True)
-class Span:
+class Span(NamedTuple):
     """Characters `start` up to, not including, `end` of the formula's text."""
 
     start: int
@@ -129,23 +130,22 @@ Node = Number | Name | At | Call | Lookup | Negative | Sum | Product | Power
 """An expression: everything but a relation."""
 
 
+_PARTS: Mapping[type, Callable[[Any], tuple[Node, ...]]] = {
+    At: lambda node: (node.place,),
+    Call: attrgetter("arguments"),
+    Lookup: attrgetter("arguments"),
+    Negative: lambda node: (node.operand,),
+    Sum: attrgetter("terms"),
+    Product: attrgetter("factors"),
+    Power: attrgetter("base", "exponent"),
+}
+"""A table and not a `match`: trees are walked often, and most nodes are leaves, which are not in it."""
+
+
 def children(node: Node) -> tuple[Node, ...]:
     """The direct parts of a node, in reading order."""
-    match node:
-        case At(place=place):
-            return (place,)
-        case Call(arguments=arguments) | Lookup(arguments=arguments):
-            return arguments
-        case Negative(operand=operand):
-            return (operand,)
-        case Sum(terms=terms):
-            return terms
-        case Product(factors=factors):
-            return factors
-        case Power(base=base, exponent=exponent):
-            return (base, exponent)
-        case _:
-            return ()
+    parts = _PARTS.get(type(node))
+    return parts(node) if parts else ()
 
 
 def walk(node: Node) -> Iterator[Node]:
@@ -154,7 +154,8 @@ def walk(node: Node) -> Iterator[Node]:
     while stack:
         node = stack.pop()
         yield node
-        stack.extend(reversed(children(node)))
+        if parts := _PARTS.get(type(node)):
+            stack.extend(reversed(parts(node)))
 
 
 def size(node: Node) -> int:

@@ -112,6 +112,7 @@ class _Parser:
         self.tables = tables
         self.tokens = tokens(text)
         self.place = 0
+        self.next = self.tokens[0]
         self.depth = 0
         self.signs: list[Token] = []
 
@@ -298,13 +299,11 @@ class _Parser:
 
     # ---- reading tokens ----
 
-    @property
-    def next(self) -> Token:
-        return self.tokens[self.place]
-
     def take(self) -> Token:
+        """Read a token; nobody reads the one of kind "end"."""
         token = self.next
         self.place += 1
+        self.next = self.tokens[self.place]
         return token
 
     def since(self, start: int) -> Span:

@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 import re
 import unicodedata
-from dataclasses import dataclass
+from typing import NamedTuple
 
 from solvers.formula.errors import FormulaError
 from solvers.formula.nodes import Span
@@ -67,8 +67,7 @@ _ALIAS = {"π": "pi"}
 _NAME_RULE = "a name is a letter, then letters, digits and '_'"
 
 
-@dataclass(frozen=True, slots=True)
-class Token:
+class Token(NamedTuple):
     """`kind` is "number", "name", "primes", "sign" or "end"; `text` is in our own spelling."""
 
     kind: str
@@ -84,17 +83,16 @@ def tokens(text: str) -> list[Token]:
             text=text, span=Span(LENGTH_LIMIT, len(text)), code="length-limit",
             hint="name parts of it in 'where'",
         )  # fmt: skip
-    found = []
+    found: list[Token] = []
     place = 0
     while place < len(text):
         match = _PATTERN.match(text, place)
         if match is None:
             raise _strange(text, place)
-        token = _token(match)
-        if token is not None:
-            found.append(token)
         place = match.end()
-    found.append(Token("end", "", Span(len(text), len(text))))
+        if match.lastgroup != "space":
+            found.append(_token(match))
+    found.append(Token("end", "", Span(place, place)))
     return found
 
 
@@ -118,23 +116,21 @@ def read_name(name: str) -> str:
     return _checked_name(name, name, 0)
 
 
-def _token(match: re.Match[str]) -> Token | None:
-    text, span, written = match.string, Span(match.start(), match.end()), match.group()
+def _token(match: re.Match[str]) -> Token:
+    text, span, written = match.string, Span(*match.span()), match.group()
     match match.lastgroup:
-        case "space":
-            return None
+        case "sign" | "same":
+            return Token("sign", SAME_SIGN.get(written, written), span)
+        case "name":
+            return Token("name", _checked_name(written, text, span.start), span)
         case "number":
             _check_number(written, text, span)
             return Token("number", written, span)
-        case "name":
-            return Token("name", _checked_name(written, text, span.start), span)
         case "primes":
             return Token("primes", "'" * sum(_PRIMES[c] for c in written), span)
-        case "refused":
+        case _:
             message, hint = REFUSED[written]
             raise FormulaError(message, text=text, span=span, code="sign", hint=hint)
-        case _:
-            return Token("sign", SAME_SIGN.get(written, written), span)
 
 
 def _check_number(written: str, text: str, span: Span) -> None:
@@ -152,6 +148,8 @@ def _check_number(written: str, text: str, span: Span) -> None:
 
 
 def _checked_name(written: str, text: str, start: int) -> str:
+    if written.isascii():
+        return written
     name = unicodedata.normalize("NFC", written).replace("µ", "μ")
     for offset, letter in enumerate(written):
         kind = "digit"
