@@ -15,7 +15,7 @@ from service.assemble.quoting import quoted
 from service.assemble.relations import Sides, conditions
 from service.assemble.spots import Spot
 from service.complaints import Complaint, Stage, refuse
-from solvers.formula.nodes import At, Call, Name, Node, Number, Relation, Sum, children, walk, with_children
+from solvers.formula.nodes import At, Call, Name, Node, Number, Sum, children, walk, with_children
 from solvers.problem import Arc, Condition, Equation, Problem, Unknown
 
 MOST_PIECES = 24
@@ -163,8 +163,7 @@ class ArcBuilder:
     def values(self, formulas: Iterable[Formula]) -> Iterable[At]:
         """The values at places in some formulas."""
         for formula in formulas:
-            for part in formula.tree.sides if isinstance(formula.tree, Relation) else (formula.tree,):
-                yield from (node for node in walk(part) if isinstance(node, At))
+            yield from (node for node in formula.nodes if isinstance(node, At))
 
     def index(self, node: At) -> int:
         """Which place a value is at."""

@@ -21,7 +21,7 @@ from service.assemble.quoting import quoted
 from service.complaints import Complaint, Stage, pointer, refuse
 from solvers.formula.algebra import bare
 from solvers.formula.evaluate import REAL, evaluate
-from solvers.formula.nodes import Lookup, Name, Node, Number, Relation, walk
+from solvers.formula.nodes import Lookup, Name, Node, Number
 from solvers.formula.printer import text
 from solvers.problem import Condition, Problem
 from solvers.tables.table import Outside
@@ -125,11 +125,9 @@ def _uses(formulas: Iterable[Formula]) -> Iterator[_Use]:
 
 def _all_uses(formulas: Iterable[Formula]) -> Iterator[_Use]:
     for formula in formulas:
-        tree = formula.tree
-        for part in tree.sides if isinstance(tree, Relation) else (tree,):
-            for node in walk(part):
-                if isinstance(node, Lookup) and node.table.outside is Outside.REFUSE:
-                    yield from (_Use(node, index, formula) for index in range(len(node.arguments)))
+        for node in formula.nodes:
+            if isinstance(node, Lookup) and node.table.outside is Outside.REFUSE:
+                yield from (_Use(node, index, formula) for index in range(len(node.arguments)))
 
 
 @dataclass(slots=True)

@@ -9,7 +9,7 @@ from service.assemble.formulas import Formula
 from service.assemble.quoting import quoted
 from service.complaints import Complaint
 from solvers.formula.evaluate import REAL, evaluate
-from solvers.formula.nodes import At, Call, Name, Node, Number, Power, Product, Relation, children, walk, with_children
+from solvers.formula.nodes import At, Call, Name, Node, Number, Power, Product, children, walk, with_children
 from solvers.tables.table import OutsideRangeError
 
 Values = Mapping[str, float]
@@ -34,8 +34,7 @@ def literal(node: Node) -> bool:
 def undefined(formula: Formula, constants: Values) -> list[Complaint]:
     """The smallest parts of a formula that have no value whatever the curve is: `1/0`, `sqrt(-1)`."""
     walk_through = _Walk(formula, constants)
-    tree = formula.tree
-    for part in tree.sides if isinstance(tree, Relation) else (tree,):
+    for part in formula.sides:
         walk_through.value(part)
     return walk_through.complaints
 
@@ -50,8 +49,15 @@ class _Walk:
 
     def value(self, node: Node) -> float | None:
         """The value of a part, None where it depends on the curve or has none."""
-        if isinstance(node, At):
-            return None
+        match node:
+            case At():
+                return None
+            case Number(value=value):
+                return value
+            case Name(name="pi"):
+                return math.pi
+            case Name(name=name):
+                return self.constants.get(name)
         parts = [self.value(part) for part in children(node)]
         if self.divides_by_zero(node, parts):
             return None

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
-from functools import partial
+from functools import cached_property, partial
 from itertools import chain
 from typing import TypeVar
 
@@ -13,13 +13,13 @@ from service.complaints import Complaint, Stage, pointer, refuse, sentence
 from service.spec import Document
 from service.spec.model import ArcPart
 from solvers.formula.errors import FormulaError
-from solvers.formula.nodes import Node, Number, Relation, Span
+from solvers.formula.nodes import Node, Number, Relation, Span, walk
 from solvers.formula.parser import Tables, parse_expression, parse_relation
 
 Tree = TypeVar("Tree", Node, Relation, Node | Relation)
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(frozen=True)
 class Expression:
     """A formula without a sign of relation."""
 
@@ -28,18 +28,38 @@ class Expression:
     pointer: str
     written: bool = True  # False where the document has a number: it has no characters to mark
 
+    @property
+    def sides(self) -> tuple[Node, ...]:
+        """The tree, as the only one."""
+        return (self.tree,)
+
+    @cached_property
+    def nodes(self) -> tuple[Node, ...]:
+        """Every part of it, parents first."""
+        return tuple(walk(self.tree))
+
     def complaint(self, span: Span, code: str, message: str, hint: str) -> Complaint:
         """A finding at these characters of the formula."""
         return Complaint(self.pointer, (span.start, span.end) if self.written else None, code, message, hint)
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(frozen=True)
 class Statement:
     """A formula with signs of relation."""
 
     tree: Relation
     text: str
     pointer: str
+
+    @property
+    def sides(self) -> tuple[Node, ...]:
+        """What stands between the signs."""
+        return self.tree.sides
+
+    @cached_property
+    def nodes(self) -> tuple[Node, ...]:
+        """Every part of its sides, parents first."""
+        return tuple(node for side in self.tree.sides for node in walk(side))
 
     def complaint(self, span: Span, code: str, message: str, hint: str) -> Complaint:
         """A finding at these characters of the formula."""

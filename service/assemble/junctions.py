@@ -9,7 +9,7 @@ from service.assemble.formulas import ArcFormulas, Formula, Formulas
 from service.assemble.orders import Reach
 from service.assemble.places import Places
 from service.complaints import Complaint, listing
-from solvers.formula.nodes import At, Name, Relation, walk
+from solvers.formula.nodes import At, Name
 from solvers.formula.printer import text
 from solvers.problem import Jump
 
@@ -86,8 +86,7 @@ class Junctions:
         what does not occur there.  `index` has the place of every node, by its identity.
         """
         for formula in formulas:
-            sides = formula.tree.sides if isinstance(formula.tree, Relation) else (formula.tree,)
-            for node in (node for part in sides for node in walk(part)):
+            for node in formula.nodes:
                 if isinstance(node, At):
                     yield from self.of_value(formula, node, index[id(node)])
 

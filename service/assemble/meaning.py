@@ -9,7 +9,7 @@ from graphlib import CycleError, TopologicalSorter
 from service.assemble.formulas import Formulas
 from service.assemble.names import Kind, Names
 from service.complaints import Refused, Stage
-from solvers.formula.nodes import At, Call, Name, Node, Relation, children, walk
+from solvers.formula.nodes import At, Call, Name, Node, Relation, children
 
 
 @dataclass(frozen=True, slots=True)
@@ -31,9 +31,20 @@ class Traits:
         return not (self.moving or self.placed or self.integral or self.parameter)
 
 
+GIVEN = Traits()
+
+_OF_KIND = {
+    Kind.INDEPENDENT: Traits(moving=True),
+    Kind.UNKNOWN: Traits(moving=True),
+    Kind.PARAMETER: Traits(parameter=True),
+}
+"""The traits of names that are not those of a formula or of nothing."""
+
+
 @dataclass(frozen=True, slots=True)
 class Meaning:
-    """Names understood: their kinds, the abbreviations in an order in which each uses earlier ones, their traits."""
+    """Names understood: their kinds, the abbreviations in an order in which each uses earlier ones, the traits of
+    every name."""
 
     names: Names
     order: tuple[str, ...]
@@ -51,13 +62,9 @@ class Meaning:
                 case Call(function="integral"):
                     integral = True
                 case Name(name=name):
-                    kind = self.names.kinds.get(name)
-                    moving |= kind in (Kind.UNKNOWN, Kind.INDEPENDENT)
-                    parameter |= kind is Kind.PARAMETER
-                    if kind is Kind.ABBREVIATION and name in self.traits:
-                        of = self.traits[name]
-                        moving, placed = moving or of.moving, placed or of.placed
-                        integral, parameter = integral or of.integral, parameter or of.parameter
+                    of = self.traits.get(name, GIVEN)
+                    moving, placed = moving or of.moving, placed or of.placed
+                    integral, parameter = integral or of.integral, parameter or of.parameter
                 case _:
                     stack.extend(children(node))
         return Traits(moving, placed, integral, parameter)
@@ -66,7 +73,7 @@ class Meaning:
 def read_meaning(formulas: Formulas, names: Names) -> Meaning:
     """The meaning of the names.  Raises `Refused` (stage names) where abbreviations go round in a circle."""
     order = _order(formulas, names)
-    traits: dict[str, Traits] = {}
+    traits = {name: _OF_KIND.get(kind, GIVEN) for name, kind in names.kinds.items()}
     meaning = Meaning(names, order, traits)
     for name in order:
         traits[name] = meaning.of(*(formula.tree for formula in formulas.definitions[name]))
@@ -80,7 +87,7 @@ def _order(formulas: Formulas, names: Names) -> tuple[str, ...]:
         name: [
             node.name
             for formula in found
-            for node in walk(formula.tree)
+            for node in formula.nodes
             if isinstance(node, Name | At) and names.kinds.get(node.name) is Kind.ABBREVIATION
         ]
         for name, found in definitions.items()

@@ -7,7 +7,7 @@ from dataclasses import replace
 
 from service.assemble.formulas import Formulas
 from service.assemble.names import Kind, Names
-from solvers.formula.nodes import At, Name, Node, Relation, walk
+from solvers.formula.nodes import At, Name, Node, walk
 from solvers.problem import Equation
 
 
@@ -15,11 +15,9 @@ def find_orders(formulas: Formulas, names: Names) -> dict[str, int]:
     """The highest derivative of every unknown anywhere, abbreviations and conditions at places included."""
     orders = dict.fromkeys(names.of(Kind.UNKNOWN), 0)
     for formula in formulas.moving():
-        tree = formula.tree
-        for part in tree.sides if isinstance(tree, Relation) else (tree,):
-            for node in walk(part):
-                if isinstance(node, Name | At) and node.name in orders:
-                    orders[node.name] = max(orders[node.name], node.order)
+        for node in formula.nodes:
+            if isinstance(node, Name | At) and node.name in orders:
+                orders[node.name] = max(orders[node.name], node.order)
     return orders
 
 

@@ -6,10 +6,10 @@ from collections.abc import Iterator
 from itertools import chain
 
 from service.assemble.formulas import Expression, Formula, Formulas
-from service.assemble.meaning import Meaning, Traits
+from service.assemble.meaning import GIVEN, Meaning
 from service.assemble.names import Kind
 from service.complaints import Complaint, listing, sentence
-from solvers.formula.nodes import At, Call, Name, Node, Relation, children, walk
+from solvers.formula.nodes import At, Call, Name, children
 
 
 def misplaced(formulas: Formulas, meaning: Meaning) -> Iterator[Complaint]:
@@ -44,13 +44,9 @@ def misplaced(formulas: Formulas, meaning: Meaning) -> Iterator[Complaint]:
         yield from _end(end, meaning)
 
 
-def _top(formula: Formula) -> tuple[Node, ...]:
-    return formula.tree.sides if isinstance(formula.tree, Relation) else (formula.tree,)
-
-
 def _nonlocal(formula: Formula, meaning: Meaning, why: str) -> Iterator[Complaint]:
-    for node in (node for part in _top(formula) for node in walk(part)):
-        traits = meaning.of(node) if isinstance(node, Name | At | Call) else Traits()
+    for node in formula.nodes:
+        traits = meaning.of(node) if isinstance(node, Name | At | Call) else GIVEN
         if traits.placed and isinstance(node, Name | At):
             message = f"A value at a place cannot stand here: the formula {why}."
             yield formula.complaint(node.span, "misplaced", message, _BY_PARAMETER)
@@ -66,10 +62,10 @@ _BY_PARAMETER = "Make it a parameter and fix that by a condition: p = integral(�
 
 def _running(formula: Formula, meaning: Meaning) -> Iterator[Complaint]:
     """In a formula of values at places: names without a place, and integrals."""
-    stack = list(reversed(_top(formula)))
+    stack = list(reversed(formula.sides))
     while stack:
         node = stack.pop()
-        traits = meaning.of(node) if isinstance(node, Name | Call) else Traits()
+        traits = meaning.of(node) if isinstance(node, Name | Call) else GIVEN
         if isinstance(node, At):
             continue
         if isinstance(node, Name) and traits.moving:
@@ -89,7 +85,7 @@ _INTEGRALS = "Put it into integrand or constraints; or make it a parameter p wit
 
 
 def _inside_integral(formula: Formula, meaning: Meaning) -> Iterator[Complaint]:
-    for node in (node for part in _top(formula) for node in walk(part)):
+    for node in formula.nodes:
         if isinstance(node, Call) and node.function == "integral":
             traits = meaning.of(*node.arguments)
             if traits.placed or traits.integral:
@@ -99,7 +95,7 @@ def _inside_integral(formula: Formula, meaning: Meaning) -> Iterator[Complaint]:
 
 
 def _placed_twice(formula: Formula, meaning: Meaning) -> Iterator[Complaint]:
-    for node in (node for part in _top(formula) for node in walk(part)):
+    for node in formula.nodes:
         traits = meaning.traits.get(node.name) if isinstance(node, At) else None
         if isinstance(node, At) and traits is not None and not traits.moving:
             message = f"The abbreviation “{node.name}” does not run along the curve: it has no value at a place."

@@ -4,14 +4,13 @@ from __future__ import annotations
 
 from bisect import bisect_left
 from collections.abc import Iterable, Iterator, Sequence
-from dataclasses import replace
 
 from service.assemble.chain import unchained
 from service.assemble.dimensions import Units
 from service.assemble.formulas import Expression, Formula, Formulas
 from service.assemble.spots import SAME, Spot, spot_of
 from service.complaints import Complaint, Stage, refuse
-from solvers.formula.nodes import At, Node, Number, Relation, Span, walk
+from solvers.formula.nodes import At, Node, Number, Span
 from solvers.formula.printer import text
 from solvers.problem import Parameter, Place
 
@@ -161,11 +160,7 @@ def _room(spots: Sequence[Spot]) -> float:
 
 def _named(formulas: Formulas) -> Iterator[tuple[Formula, At]]:
     for formula in formulas.moving():
-        tree = formula.tree
-        for part in tree.sides if isinstance(tree, Relation) else (tree,):
-            for node in walk(part):
-                if isinstance(node, At):
-                    yield formula, node
+        yield from ((formula, node) for node in formula.nodes if isinstance(node, At))
 
 
 def _range(spot: Spot, parameters: dict[str, Parameter]) -> tuple[float, float]:
@@ -211,4 +206,5 @@ def settle(node: Node, places: Places, units: Units, parameters: dict[str, Param
     """An `At` whose place is one of the problem's places, to the very tree."""
     assert isinstance(node, At)
     spot = spot_of(node.place, text(node.place), units, parameters)
-    return replace(node, place=places.spots[places.index(spot)].place.tree)
+    place = places.spots[places.index(spot)].place.tree
+    return At(node.name, node.order, place, node.side, node.span)

@@ -7,7 +7,7 @@ from collections.abc import Iterator
 from service.assemble.formulas import Expression, Formula, Formulas
 from service.assemble.names import Kind, Names
 from service.complaints import Complaint, sentence
-from solvers.formula.nodes import FUNCTIONS, At, Call, Name, Node, Relation, Span, children, walk
+from solvers.formula.nodes import FUNCTIONS, At, Call, Name, Node, Span, children, walk
 
 HIGHEST_ORDER = 6
 """The highest derivative of an unknown."""
@@ -30,8 +30,7 @@ class _Checker:
         self.sided = sided
 
     def complaints(self) -> Iterator[Complaint]:
-        tree = self.formula.tree
-        for part in tree.sides if isinstance(tree, Relation) else (tree,):
+        for part in self.formula.sides:
             yield from self.node(part)
 
     def node(self, node: Node) -> Iterator[Complaint]:
@@ -118,7 +117,7 @@ class _Checker:
 
 def _guess(guess: Expression, names: Names) -> Iterator[Complaint]:
     """A guess is made of the independent variable, constants and parameters."""
-    for node in walk(guess.tree):
+    for node in guess.nodes:
         inside = isinstance(node, Name) and names.kinds.get(node.name) in (Kind.UNKNOWN, Kind.ABBREVIATION)
         if inside or isinstance(node, At) or (isinstance(node, Call) and node.function == "integral"):
             message = "A guess is a formula of the independent variable, constants and parameters."

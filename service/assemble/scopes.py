@@ -7,7 +7,7 @@ from collections.abc import Iterator
 from service.assemble.formulas import Formula, Formulas
 from service.assemble.meaning import Meaning
 from service.complaints import Complaint, listing
-from solvers.formula.nodes import At, Call, Name, Node, Relation, children, walk
+from solvers.formula.nodes import At, Call, Name, Node, children
 
 
 def out_of_scope(formulas: Formulas) -> Iterator[Complaint]:
@@ -27,7 +27,7 @@ def out_of_scope(formulas: Formulas) -> Iterator[Complaint]:
 
 
 def _missing(formula: Formula, owners: dict[str, list[str]], arcs: list[str]) -> Iterator[Complaint]:
-    for node in (node for part in _sides(formula) for node in walk(part)):
+    for node in formula.nodes:
         if not isinstance(node, Name | At) or node.name not in owners:
             continue
         lacking = [arc for arc in arcs if arc not in owners[node.name]]
@@ -44,7 +44,7 @@ def without_place(formulas: Formulas, meaning: Meaning) -> Iterator[Complaint]:
     stated = [*formulas.endpoints, *(() if formulas.endpoint is None else (formulas.endpoint,))]
     stated += [c for c in formulas.constraints if not meaning.of(c.tree).moving]
     for formula in stated if own else ():
-        stack: list[Node] = list(_sides(formula))
+        stack: list[Node] = list(formula.sides)
         while stack:
             node = stack.pop()
             if isinstance(node, At) or (isinstance(node, Call) and node.function == "integral"):
@@ -53,7 +53,3 @@ def without_place(formulas: Formulas, meaning: Meaning) -> Iterator[Complaint]:
                 message = f"“{node.name}” differs from arc to arc: it has no single value here."
                 yield formula.complaint(node.span, "not-on-arc", message, "Give it outside of the arcs.")
             stack.extend(children(node))
-
-
-def _sides(formula: Formula) -> tuple[Node, ...]:
-    return formula.tree.sides if isinstance(formula.tree, Relation) else (formula.tree,)

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from operator import attrgetter
 from typing import Any, NamedTuple
 
@@ -166,17 +166,19 @@ def size(node: Node) -> int:
 def with_children(node: Node, parts: tuple[Node, ...]) -> Node:
     """The same node with other direct parts, as many and in the same order as `children` gives."""
     match node:
-        case At():
-            return replace(node, place=parts[0])
-        case Call() | Lookup():
-            return replace(node, arguments=parts)
-        case Negative():
-            return replace(node, operand=parts[0])
-        case Sum():
-            return replace(node, terms=parts)
-        case Product():
-            return replace(node, factors=parts)
-        case Power():
-            return replace(node, base=parts[0], exponent=parts[1])
+        case At(name, order, _, side, span):
+            return At(name, order, parts[0], side, span)
+        case Call(function, _, span):
+            return Call(function, parts, span)
+        case Lookup(table, orders, _, span):
+            return Lookup(table, orders, parts, span)
+        case Negative(_, span):
+            return Negative(parts[0], span)
+        case Sum(_, minus, span):
+            return Sum(parts, minus, span)
+        case Product(_, over, span):
+            return Product(parts, over, span)
+        case Power(_, _, span):
+            return Power(parts[0], parts[1], span)
         case _:
             return node
