@@ -24,9 +24,9 @@ from dataclasses import fields
 from typing import Any
 
 import sqlalchemy as sql
-from sqlalchemy.engine import Connection, Row
+from sqlalchemy.engine import Connection
 
-from service.database import open_database, translated
+from service.database import bare_cursor, open_database, text_of, translated
 from service.run import (
     CursorError,
     Figures,
@@ -39,8 +39,10 @@ from service.run import (
 )
 from service.schema import documents, results, runs, upgrade
 
-_COMPRESS_FROM = 8 * 1024  # bytes
-_COLUMNS = [runs.c[field.name] for field in fields(Run)]
+_COMPRESS_FROM = 64 * 1024  # bytes; whoever waits for an answer waits for its compression too
+_NAMES = tuple(field.name for field in fields(Run))
+_COLUMNS = [runs.c[name] for name in _NAMES]
+_FIGURES = tuple(field.name for field in fields(Figures))
 
 # Built once: building a statement takes longer than SQLite needs for it.
 _INSERT_RUN = runs.insert()
@@ -56,10 +58,11 @@ _MOVE = (
     .where(
         runs.c.id == sql.bindparam("sought"),
         runs.c.attempt == sql.bindparam("tried"),
-        runs.c.state == State.SOLVING.value,
+        runs.c.state == sql.bindparam("before"),
     )
     .returning(*_COLUMNS)
 )
+_MOVED = ("state", "updated", "owner", "lease")
 _WAITING = sql.select(sql.func.count()).where(runs.c.state == State.WAITING.value)
 
 
@@ -74,6 +77,8 @@ class Store:
         self._turn = threading.Lock() if self._sqlite else nullcontext()
         with translated():
             upgrade(self._engine)
+        self._finish = text_of(self._engine, _MOVE, *_MOVED, *_FIGURES)
+        self._insert_result = text_of(self._engine, _INSERT_RESULT)
 
     def close(self) -> None:
         """Give the connections back."""
@@ -223,31 +228,32 @@ class Store:
         """
         large = len(result) >= _COMPRESS_FROM
         state = State.STOPPED if stopped else State.FINISHED
-        values = {field.name: getattr(figures, field.name) for field in fields(Figures)}
         content = zlib.compress(result, 1) if large else result
-        with self._write() as connection:
-            ended = _move(connection, run.id, run.attempt, state, values)
-            if ended is not None:
-                connection.execute(_INSERT_RESULT, {"run_id": run.id, "compressed": int(large), "document": content})
-        return ended
+        change = _change(run, state, {name: getattr(figures, name) for name in _FIGURES})
+        with translated(), self._turn, bare_cursor(self._engine) as cursor:
+            row = cursor.execute(self._finish, change).fetchone()
+            if row is not None:
+                kept = {"run_id": run.id, "compressed": int(large), "document": content}
+                cursor.execute(self._insert_result, kept)
+        return None if row is None else _run(row)
 
     def fail(self, run: Run, reason: str, *, seconds: float | None = None) -> Run | None:
         """End a run without a result; `run.deaths` is kept."""
         values = {"reason": reason, "deaths": run.deaths, "seconds": seconds}
         with self._write() as connection:
-            return _move(connection, run.id, run.attempt, State.FAILED, values)
+            return _move(connection, run, State.FAILED, values)
 
     def stop(self, run: Run, *, seconds: float | None = None) -> Run | None:
         """End a cancelled run that left no result."""
         values = {"reason": "stopped on request", "seconds": seconds}
         with self._write() as connection:
-            return _move(connection, run.id, run.attempt, State.STOPPED, values)
+            return _move(connection, run, State.STOPPED, values)
 
     def give_back(self, run: Run) -> Run | None:
         """Let a run wait again, with its `deaths` and `reason` so far."""
         values = {"deaths": run.deaths, "reason": run.reason}
         with self._write() as connection:
-            return _move(connection, run.id, run.attempt, State.WAITING, values)
+            return _move(connection, run, State.WAITING, values)
 
     def take_back(self, owner: str) -> int:
         """At start: let runs wait again that an earlier life of this server left.  Returns how many."""
@@ -302,11 +308,15 @@ class Store:
             yield connection
 
 
-def _move(connection: Connection, id: str, attempt: int, state: State, values: Mapping[str, Any]) -> Run | None:
+def _change(run: Run, state: State, values: Mapping[str, Any]) -> dict[str, Any]:
+    """The parameters of `_MOVE`."""
+    moved = {"state": state.value, "updated": time.time(), "owner": None, "lease": None}
+    return {"sought": run.id, "tried": run.attempt, "before": State.SOLVING.value, **moved, **values}
+
+
+def _move(connection: Connection, run: Run, state: State, values: Mapping[str, Any]) -> Run | None:
     """Change the state of a run that is being solved in this attempt."""
-    change: dict[str, Any] = {"sought": id, "tried": attempt, "updated": time.time(), "owner": None, "lease": None}
-    change |= {"state": state.value, **values}
-    row = connection.execute(_MOVE, change).one_or_none()
+    row = connection.execute(_MOVE, _change(run, state, values)).one_or_none()
     return None if row is None else _run(row)
 
 
@@ -327,12 +337,13 @@ def _same_body(earlier: Run, run: Run) -> Run:
 
 
 def _row(run: Run) -> dict[str, Any]:
-    row = {field.name: getattr(run, field.name) for field in fields(Run)}
+    row = {name: getattr(run, name) for name in _NAMES}
     return row | {"state": run.state.value, "cancel_asked": int(run.cancel_asked)}
 
 
-def _run(row: Row[Any]) -> Run:
-    values = row._asdict()
+def _run(row: Sequence[Any]) -> Run:
+    """The run of a row of `_COLUMNS`."""
+    values = dict(zip(_NAMES, row, strict=True))
     return Run(**values | {"state": State(values["state"]), "cancel_asked": bool(values["cancel_asked"])})
 
 

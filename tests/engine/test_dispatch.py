@@ -261,19 +261,17 @@ def test_an_outcome_waits_in_memory_while_the_disk_is_full(start, submit, ended,
     dispatcher, store = start()
     run = submit(dispatcher, "noise", seconds=0.5, bytes=200_000)
 
-    @sql.event.listens_for(store._engine, "begin")
-    def narrow(connection):  # as if the disk ended here: SQLite gives the same error
-        connection.connection.dbapi_connection.execute("PRAGMA max_page_count = 1")
+    @sql.event.listens_for(store._engine, "checkout")
+    def narrow(connection, *_):  # as if the disk ended here: SQLite gives the same error
+        connection.execute("PRAGMA max_page_count = 1")
 
     until(lambda: dispatcher._unwritten)
     assert store.get(run.id).state is State.SOLVING
     with pytest.raises(StoreFullError, match="full"):
         submit(dispatcher, say="x" * 100_000)
-    sql.event.remove(store._engine, "begin", narrow)
+    sql.event.remove(store._engine, "checkout", narrow)
     sql.event.listen(
-        store._engine,
-        "begin",
-        lambda connection: connection.connection.dbapi_connection.execute("PRAGMA max_page_count = 100000"),
+        store._engine, "checkout", lambda connection, *_: connection.execute("PRAGMA max_page_count = 100000")
     )
     assert ended(store, run).state is State.FINISHED
     assert len(json.loads(store.result(run.id))["answer"]) == 400_000
