@@ -9,9 +9,10 @@ from __future__ import annotations
 
 import math
 import re
-from collections.abc import Iterable, Mapping
+from collections.abc import Mapping, Sequence
 from functools import cache
 from importlib.metadata import PackageNotFoundError, version
+from itertools import islice
 from typing import Any
 
 import numpy as np
@@ -150,8 +151,18 @@ def _in(number: float | None, unit: Unit) -> float | None:
     return None if number is None else _finite(number / unit.factor)
 
 
-def _numbers(values: Iterable[float], unit: Unit) -> list[float | None]:
-    return [_in(value, unit) for value in values]
+def _numbers(values: Array, unit: Unit) -> list[float | None]:
+    """SI numbers in `unit`."""
+    with np.errstate(over="ignore"):
+        found = values / unit.factor
+    told: list[float | None] = found.tolist()
+    return told if np.isfinite(found).all() else [_finite(number) for number in told]
+
+
+def _pieces(pieces: Sequence[Array], unit: Unit) -> list[list[float | None]]:
+    """SI coefficients, interval by interval; divided at once, since they are many and short."""
+    told = iter(_numbers(np.concatenate(pieces), unit))
+    return [list(islice(told, len(piece))) for piece in pieces]
 
 
 def _arc(name: str, curve: Curve, units: Mapping[str, Unit], independent: Unit) -> dict[str, Any]:
@@ -159,11 +170,8 @@ def _arc(name: str, curve: Curve, units: Mapping[str, Unit], independent: Unit) 
     return {
         "name": name,
         "basis": "legendre",
-        "breaks": _numbers(curve.breaks.tolist(), independent),
-        "functions": {
-            name: [_numbers(piece.tolist(), units[name]) for piece in pieces]
-            for name, pieces in curve.functions.items()
-        },
+        "breaks": _numbers(curve.breaks, independent),
+        "functions": {name: _pieces(pieces, units[name]) for name, pieces in curve.functions.items()},
     }
 
 
@@ -224,7 +232,7 @@ def _fitted(fitted: Fitted, problem: Problem) -> dict[str, Any]:
     unit = fitted.unit
 
     def column(values: Array | None, of: Unit = unit) -> list[float | None] | None:
-        return None if values is None else _numbers(values.tolist(), of)
+        return None if values is None else _numbers(values, of)
 
     return {
         "of": fitted.label,
@@ -357,7 +365,7 @@ def _sweep(solution: Solution, problem: Problem, units: _Units) -> dict[str, Any
     by = [own[sweep.constant] for sweep in problem.sweeps]
     return {
         "constants": [
-            {"name": sweep.constant, "unit": unit.text, "values": _numbers(sweep.values, unit)}
+            {"name": sweep.constant, "unit": unit.text, "values": _numbers(np.array(sweep.values), unit)}
             for sweep, unit in zip(problem.sweeps, by, strict=True)
         ],
         "parameters": {parameter.name: parameter.unit.text for parameter in problem.parameters},

@@ -5,7 +5,6 @@ Imports the solver with CasADi: for workers and for `curvewright solve`, never f
 
 from __future__ import annotations
 
-import json
 import math
 import pickle
 import time
@@ -15,6 +14,8 @@ from concurrent.futures import ThreadPoolExecutor
 from dataclasses import replace
 from functools import cache
 from typing import Any
+
+from pydantic_core import to_json
 
 from service.archive import result_document
 from service.assemble import assemble
@@ -27,6 +28,9 @@ from solvers.solution import Progress
 from solvers.solve import solve as solve_problem
 
 Stop = Callable[[], bool]
+
+_BESIDE = ThreadPoolExecutor(1, "beside")
+"""The thread for what is done beside a solve."""
 
 _FIGURES = ("verdict", "value", "value_error", "value_unit")
 
@@ -60,19 +64,18 @@ def _performed(
 
     # The reading is written while the optimiser computes, which leaves Python for most of its time; begun earlier, it
     # would only delay what is done in Python before.
-    with ThreadPoolExecutor(1) as beside:
-        reading = cache(lambda: beside.submit(_reading, document, problem))
-        told = False
+    reading = cache(lambda: _BESIDE.submit(_reading, document, problem))
+    told = False
 
-        def watch(progress: Progress) -> bool:
-            nonlocal told
-            reading()
-            report(progress_event(progress, problem))
-            told = told or stop()
-            return told
+    def watch(progress: Progress) -> bool:
+        nonlocal told
+        reading()
+        report(progress_event(progress, problem))
+        told = told or stop()
+        return told
 
-        solution = solve_problem(problem, watch)
-        understood = reading().result()
+    solution = solve_problem(problem, watch)
+    understood = reading().result()
     state = State.STOPPED if told else State.FINISHED
     times = {"read": ready - began}
     return result_document(document, problem, solution, understood, times, id=id, state=state.value)
@@ -91,9 +94,8 @@ def solve(head: Mapping[str, Any], body: bytes, report: Report, stop: Stop) -> t
         problem = assemble(document)
     result = _performed(document, problem, thinned(report), stop, head["id"], head["time_limit"], began)
     figures = {name: result[name] for name in _FIGURES}
-    text = json.dumps(result, ensure_ascii=False, allow_nan=False, separators=(",", ":"))
     stopped = result["state"] == State.STOPPED.value
-    return {"figures": figures, "stopped": stopped}, text.encode("utf-8", "backslashreplace")
+    return {"figures": figures, "stopped": stopped}, to_json(result, inf_nan_mode="null")
 
 
 def progress_event(progress: Progress, problem: Problem) -> dict[str, Any]:

@@ -299,6 +299,9 @@ def _solution(
         if gauged.squared:
             value, value_error_or_none = root, value_error * factor if value_error_or_none is not None else None
     kept = {name: functions for name, functions in shape.functions.items() if not name.startswith(SLACK + " ")}
+    fitted = None if brief else fit(path)
+    notes = (*_notes(problem, pursuit, gauged), *([left_out] if left_out else []))
+    switches = _switches(pursuit, gauged)
     return Solution(
         verdict=verdict,
         value=value,
@@ -315,9 +318,9 @@ def _solution(
         meshes=tuple(pursuit.steps),
         iterations=pursuit.iterations,
         times=times | {"checks": time.perf_counter() - solved_at},
-        fit=None if brief else fit(path),
-        notes=(*_notes(problem, pursuit, gauged), *([left_out] if left_out else [])),
-        switches=_switches(pursuit, gauged),
+        fit=fitted,
+        notes=notes,
+        switches=switches,
     )
 
 

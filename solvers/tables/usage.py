@@ -20,12 +20,15 @@ BEYOND = {Outside.HOLD: "holds its last value", Outside.EXTEND: "goes on along i
 
 def table_notes(path: Trajectory) -> Iterator[str]:
     """One sentence for every argument of a table along the curve, and one for tables with rounded corners."""
+    lookups = tuple(lookups_along(path.program.compiled.lowered.problem))
+    if not lookups:
+        return
     sampler = Sampler(path)
     sample = sampler.grid(PLACES)
     n, m = sampler.point.states, sampler.point.controls
     along = Along(path.program.compiled, sample.places, sample.v[:, :n], sample.v[:, n : n + m], path.parameters)
     told: set[str] = set()
-    for lookup in lookups_along(sampler.problem):
+    for lookup in lookups:
         table = lookup.table
         for index, argument in enumerate(lookup.arguments):
             values = along.value(argument)
