@@ -25,9 +25,12 @@ from solvers.transcription.trajectory import Trajectory, sizes_of
 
 Array = NDArray[np.float64]
 
-HIGHEST_DEGREE = 10
+HIGHEST_DEGREE = 11
 SMOOTH = 0.45
 """Least fall per degree, in powers of ten, of the coefficients of a curve that counts as smooth."""
+HALVED = float(np.log10(2.0))
+"""How much faster coefficients fall per degree on half an interval."""
+SPARE = 1
 NARROWEST = 1e-11
 """Least width of an interval, relative to the whole."""
 END_DEGREE = 6
@@ -182,7 +185,7 @@ def _replace(old: Interval, found: Estimate, k: int, tolerance: float, width: fl
         return
     fall = max(_fall(found.shapes[k]), 1e-3)
     missing = np.log10(found.errors[k] / tolerance)
-    wanted = degree + max(1, int(np.ceil(missing / fall)))
+    wanted = _degree(degree, missing, fall)
     if fall >= SMOOTH and wanted <= HIGHEST_DEGREE:
         yield interval(old.stretch, start, end, family, wanted)
         return
@@ -191,6 +194,7 @@ def _replace(old: Interval, found: Estimate, k: int, tolerance: float, width: fl
         return
     if fall >= SMOOTH:  # smooth but far from resolved: halves of a higher degree
         cuts = [0.5]
+        degree = _degree(degree, missing - HALVED * degree, fall + HALVED)
     else:
         bend = _bend(found.bends[k])
         if bend < END_CUT:
@@ -201,10 +205,16 @@ def _replace(old: Interval, found: Estimate, k: int, tolerance: float, width: fl
             cuts = [max(bend - 0.15, bend / 2), min(bend + 0.15, (1 + bend) / 2)]
     edges = [start, *(start + cut * old.width for cut in cuts), end]
     at_end = len(cuts) == 1 and fall < SMOOTH
-    degree = max(degree, END_DEGREE if at_end else 5) if at_end or fall >= SMOOTH else degree
+    if at_end:
+        degree = max(degree, END_DEGREE)
     for left, right in pairwise(edges):
         touching = (left == start and old.start == 0.0) or (right == end)
         yield interval(old.stretch, left, right, family if touching else Family.RADAU, degree)
+
+
+def _degree(degree: int, missing: float, fall: float) -> int:
+    """The degree at which so many powers of ten are gained; one more, as the fall is known from a few coefficients."""
+    return degree + max(1, int(np.ceil(missing / fall)) + SPARE)
 
 
 def finer(mesh: Mesh) -> Mesh:

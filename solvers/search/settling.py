@@ -15,7 +15,7 @@ from solvers.transcription.trajectory import distance
 
 CURVE_ROOM = 100.0
 """How much more than the tolerance the curve may still have moved: a switch that hardly matters moves freely."""
-LEAST_GAIN = 0.05
+LEAST_GAIN = 0.005
 """How much of the last change of the value counts as its error at the least, however much the mesh has improved."""
 TORN_MESHES = 4
 """So many meshes in a row ..."""
