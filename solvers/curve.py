@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.polynomial import legendre
 from numpy.typing import NDArray
+
+from solvers.series import basis, side_by_side
 
 Array = NDArray[np.float64]
 
@@ -36,13 +38,5 @@ class Curve:
         coefficients = side_by_side(self.functions[name])
         if derivative:
             coefficients = np.asarray(legendre.legder(coefficients, derivative, axis=1), dtype=float)
-        values = (legendre.legvander(local, coefficients.shape[1] - 1) * coefficients[owner]).sum(axis=-1)
+        values = (basis(local, coefficients.shape[1] - 1) * coefficients[owner]).sum(axis=-1)
         return np.asarray(values * (2 / (right - left)) ** derivative)
-
-
-def side_by_side(pieces: Sequence[Array]) -> Array:
-    """Legendre coefficients of n intervals (each degrees x ...) as one array (n x degrees x ...), filled with zeros."""
-    table = np.zeros((len(pieces), max(len(piece) for piece in pieces), *pieces[0].shape[1:]))
-    for row, piece in zip(table, pieces, strict=True):
-        row[: len(piece)] = piece
-    return table

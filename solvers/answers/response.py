@@ -225,13 +225,18 @@ def _at_fixed_places(path: Trajectory, change: Array) -> Curve:
     movement = program.mesh.breaks(change[where.places]) if len(where.places) else np.zeros_like(path.breaks)
     widths, shape = np.diff(path.breaks), curve(path)
     functions: dict[str, tuple[Array, ...]] = {}
-    for quantities, modes in ((lowered.states, moved.state_modes()), (lowered.controls, moved.control_modes())):
+    for quantities, modes in ((lowered.states, moved.state_modes), (lowered.controls, moved.control_modes)):
         for column, quantity in enumerate(quantities):
             name = primed(quantity)
             functions[name] = tuple(
-                _less(own[:, column], stored, width, left, right)
+                _less(own, stored, width, left, right)
                 for own, stored, width, left, right in zip(
-                    modes, shape.functions[name], widths, movement[:-1], movement[1:], strict=True
+                    path.pieces(modes[:, :, column]),
+                    shape.functions[name],
+                    widths,
+                    movement[:-1],
+                    movement[1:],
+                    strict=True,
                 )
             )
     for name, order in lowered.given:

@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 
 from solvers.checks.adjoint import Continued, continued
 from solvers.problem import Seek
+from solvers.series import basis
 from solvers.transcription.evaluation import mapped
 from solvers.transcription.limits import quantity_bounds
 from solvers.transcription.lowering import primed
@@ -62,9 +63,9 @@ class Sampler:
         self.start, self.end = path.places[self.stretch], path.places[self.stretch + 1]
         self.length = self.width * (self.end - self.start)  # of each interval, in the independent variable
         self.span = float(path.breaks[-1] - path.breaks[0])
-        self.states = _padded(path.state_modes())
-        self.controls = _padded(path.control_modes())
-        self.costates = _padded(path.costate_modes())
+        self.states = path.state_modes
+        self.controls = path.control_modes
+        self.costates = path.costate_modes
         self.bounds = quantity_bounds(self.compiled)
         self.constants = np.array(self.compiled.constants, dtype=float)
         self.state_names = [primed(q) for q in self.compiled.lowered.states]
@@ -86,8 +87,8 @@ class Sampler:
 
     def of(self, modes: Array, interval: Indices, local: Array) -> Array:
         """Piecewise polynomials at local places (P x components)."""
-        basis = legendre.legvander(2 * local - 1, modes.shape[1] - 1)
-        return np.asarray(np.einsum("pd,pdi->pi", basis, modes[interval]))
+        shapes = basis(2 * local - 1, modes.shape[1] - 1)
+        return np.asarray(np.einsum("pd,pdi->pi", shapes, modes[interval]))
 
     def controls_at(self, interval: Indices, local: Array) -> Array:
         """The controls that are handed over: inside their constant bounds."""
@@ -125,20 +126,13 @@ class Sampler:
         """The Jacobian's nonzeros on that grid."""
         return self.slopes(self.halves)
 
-    @cached_property
-    def multiplier_modes(self) -> Array:
-        """Legendre coefficients of the multipliers of the pointwise constraints, per unit of the variable."""
-        first, mesh = self.path.program.layout.first, self.path.program.mesh.intervals
-        return _padded([i.scheme.control_modes @ self.path.multipliers[first[k] : first[k + 1]]
-                        for k, i in enumerate(mesh)])  # fmt: skip
-
     def weights(self, sample: Sample, *, constraints: bool = True) -> Array:
         """What each output counts in the Hamiltonian per fraction: costates, multipliers, sign of the integrand."""
         weights = np.zeros((len(sample.local), self.point.outputs))
         n, c = self.point.states, self.point.constraints
         weights[:, :n] = self.costates_at(sample)
         if constraints and c:
-            density = self.of(self.multiplier_modes, sample.interval, sample.local)
+            density = self.of(self.path.multiplier_modes, sample.interval, sample.local)
             weights[:, n : n + c] = density * (self.end - self.start)[sample.interval, None]
         weights[:, n + c : -1] = -self.path.row_multipliers[self._integral_rows]
         weights[:, -1] = self.sign
@@ -255,12 +249,3 @@ class Sampler:
         for row, column, value in zip(self.point.jacobian_rows, self.point.jacobian_columns, means, strict=True):
             sizes[row] += value * self.input_sizes[column]
         return sizes
-
-
-def _padded(modes: list[Array]) -> Array:
-    """Coefficients of all intervals in one array; missing degrees are zero."""
-    degree = max(len(part) for part in modes)
-    result = np.zeros((len(modes), degree, modes[0].shape[1]))
-    for k, part in enumerate(modes):
-        result[k, : len(part)] = part
-    return result

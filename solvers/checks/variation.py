@@ -13,6 +13,7 @@ from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
 from solvers.checks.sampling import HALF_WEIGHTS, HALVES, Sample, Sampler
+from solvers.series import basis
 from solvers.transcription.evaluation import mapped
 
 Array = NDArray[np.float64]
@@ -95,8 +96,8 @@ def _trial(sampler: Sampler, state_modes: Array, control_modes: Array, local: Ar
     """The inputs at local places from an interval's own variables (Q x I x D)."""
     n, m, rest = sampler.point.states, sampler.point.controls, 2 + len(sampler.problem.parameters)
     degree = len(control_modes)
-    states = legendre.legvander(2 * local - 1, degree) @ state_modes
-    controls = legendre.legvander(2 * local - 1, degree - 1) @ control_modes
+    states = basis(2 * local - 1, degree) @ state_modes
+    controls = basis(2 * local - 1, degree - 1) @ control_modes
     trial = np.zeros((len(local), n + m + rest, (degree + 1) * n + degree * m + rest))
     for i in range(n):
         trial[:, i, i : (degree + 1) * n : n] = states

@@ -9,6 +9,7 @@ from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
 from solvers.curve import Curve
+from solvers.series import basis
 
 Array = NDArray[np.float64]
 
@@ -28,10 +29,10 @@ def regraph(
     """
     span = float(x(breaks[-1:])[0] - x(breaks[:1])[0])
     nodes = legendre.leggauss(DEGREE + 1)[0]
-    fit = np.linalg.inv(legendre.legvander(nodes, DEGREE))
+    fit = np.linalg.inv(basis(nodes, DEGREE))
     between = np.linspace(-0.97, 0.97, 9)
     places = np.concatenate([nodes, between])
-    probing = legendre.legvander(between, DEGREE)
+    probing = basis(between, DEGREE)
     size = float(np.abs(functions[leading](breaks)).max()) or 1.0
     done: list[tuple[Array, Array, dict[str, Array]]] = []
     starts, ends, count = breaks[:-1], breaks[1:], 0

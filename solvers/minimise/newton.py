@@ -1,8 +1,8 @@
-"""Stationary points that need be no minima: Newton's method on the optimality system, from the same starts.
+"""Newton's method on the optimality system: for stationary points that need be no minima, and near a known minimum.
 
 A minimiser moves downhill and leaves a saddle; Newton's method does not ask for the sign of the second variation.  Each
 step is halved until the residual of the system falls.  Only equalities and fixed values take part; inequalities must
-turn out not to bind.
+turn out not to bind.  From the minimum of a coarser mesh whole steps go straight to that of the next one.
 Reference: Nocedal, Wright (2006), Numerical Optimization, section 18.1 (Newton's method for the optimality conditions;
 from memory).
 """
@@ -11,7 +11,7 @@ from __future__ import annotations
 
 import time
 from collections.abc import Callable
-from typing import Any
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
@@ -20,10 +20,16 @@ from solvers.minimise.ipopt import Iterate, Minimum, Outcome, Start
 from solvers.transcription.program import Program
 
 Array = NDArray[np.float64]
+Indices = NDArray[np.int64]
 
 STEPS = 80
 TOLERANCE = 1e-11
 SMALLEST_STEP = 2.0**-20
+STRAIGHT = 6
+FALL = 0.2
+"""Whole steps that are tried, and how far each must let the residual fall."""
+BINDING = 1e-7
+"""Multipliers (scaled) of limits that count as binding."""
 
 
 def stationary_point(program: Program, start: Start, watch: Callable[[Iterate], bool]) -> Minimum:
@@ -64,48 +70,100 @@ def stationary_point(program: Program, start: Start, watch: Callable[[Iterate], 
     return Minimum(outcome, z, system.value(z), nothing, multipliers, count, seconds, 0.0, "Newton")
 
 
+def minimum_nearby(program: Program, start: Start, watch: Callable[[Iterate], bool]) -> Minimum | None:
+    """The minimum next to one of a coarser mesh; None where a limit binds there or whole steps do not go straight."""
+    if start.multipliers is None or start.bound_multipliers is None:
+        return None
+    began = time.perf_counter()
+    system = _System(program)
+    if max(np.abs(start.bound_multipliers[system.free]).max(initial=0.0),
+           np.abs(np.delete(start.multipliers, system.equal)).max(initial=0.0)) > BINDING:  # fmt: skip
+        return None
+    z, multipliers = np.clip(start.z, program.lower, program.upper), start.multipliers
+    residual = system.residual(z, multipliers)
+    size = float(np.abs(residual).max(initial=0.0))
+    for count in range(STRAIGHT):
+        if watch(Iterate(count, system.value(z), float(np.abs(residual[len(system.free) :]).max(initial=0.0)))):
+            return None
+        step = system.step(z, multipliers, residual)
+        if step is None:
+            return None
+        z, multipliers = system.moved(z, multipliers, step, 1.0)
+        residual = system.residual(z, multipliers)
+        before, size = size, float(np.abs(residual).max(initial=0.0))
+        if size <= TOLERANCE:
+            if not within_limits(program, z):
+                return None
+            seconds = time.perf_counter() - began
+            return Minimum(Outcome.SOLVED, z, system.value(z), np.zeros(len(z)), multipliers, count + 1, seconds, 0.0,
+                           "Newton")  # fmt: skip
+        if not size <= FALL * before:
+            return None
+    return None
+
+
 class _System:
-    """The optimality system of a program in its free variables and its equalities."""
+    """The optimality system of a program in its F free variables and its E equalities."""
 
     def __init__(self, program: Program) -> None:
         self.program = program
         self.free = np.flatnonzero(program.lower < program.upper)
         self.equal = np.flatnonzero(program.row_lower == program.row_upper)
 
+    @cached_property
+    def _places(self) -> tuple[Indices, Indices, Indices]:
+        """Of the system's matrix by compressed columns: rows, starts, and for each nonzero which one it is of those of
+        the Hessian's upper triangle followed by the Jacobian's."""
+        numbers, size = self.program.numbers, len(self.free) + len(self.equal)
+        variable, condition = np.full(len(self.program.lower), -1), np.full(self.program.rows.count, -1)
+        variable[self.free] = np.arange(len(self.free))
+        condition[self.equal] = len(self.free) + np.arange(len(self.equal))
+        hessian, jacobian = numbers.hessian_pattern, numbers.jacobian_pattern
+        rows = np.concatenate([variable[hessian.rows], condition[jacobian.rows]])
+        columns = np.concatenate([variable[hessian.columns()], variable[jacobian.columns()]])
+        kept = np.flatnonzero((rows >= 0) & (columns >= 0))
+        rows, columns = rows[kept], columns[kept]
+        mirrored = rows != columns
+        rows, columns, kept = (
+            np.concatenate([rows, columns[mirrored]]),
+            np.concatenate([columns, rows[mirrored]]),
+            np.concatenate([kept, kept[mirrored]]),
+        )
+        order = np.argsort(columns * size + rows)
+        starts = np.searchsorted(columns[order], np.arange(size + 1))
+        return rows[order], starts, kept[order]
+
     def value(self, z: Array) -> float:
         return self.program.numbers.value(z)
 
-    def _parts(self, z: Array) -> tuple[Array, Array, Any]:
-        """Gradient of f, violation of the equalities, and their Jacobian in the free variables."""
-        numbers = self.program.numbers
-        violation = numbers.constraints(z)[self.equal] - self.program.row_lower[self.equal]
-        jacobian = numbers.jacobian_pattern.filled(numbers.jacobian(z)).tocsr()
-        return numbers.gradient(z)[self.free], violation, jacobian[self.equal][:, self.free]
-
     def residual(self, z: Array, multipliers: Array) -> Array:
         """The optimality system's left side: slopes of the Lagrangian, then violations."""
-        gradient, violation, jacobian = self._parts(z)
-        return np.concatenate([gradient + jacobian.T @ multipliers[self.equal], violation])
+        numbers = self.program.numbers
+        violation = numbers.constraints(z)[self.equal] - self.program.row_lower[self.equal]
+        kept = np.zeros_like(multipliers)
+        kept[self.equal] = multipliers[self.equal]
+        slopes = numbers.gradient(z) + numbers.jacobian_pattern.times_from_left(kept, numbers.jacobian(z))
+        return np.concatenate([slopes[self.free], violation])
 
     def least_squares_multipliers(self, z: Array) -> Array:
         """Multipliers with which the slopes of the Lagrangian are least."""
         from scipy.sparse.linalg import lsqr
 
-        gradient, _, jacobian = self._parts(z)
-        return np.asarray(lsqr(jacobian.T, -gradient)[0])
+        numbers = self.program.numbers
+        jacobian = numbers.jacobian_pattern.filled(numbers.jacobian(z)).tocsr()[self.equal][:, self.free]
+        return np.asarray(lsqr(jacobian.T, -numbers.gradient(z)[self.free])[0])
 
     def step(self, z: Array, multipliers: Array, residual: Array) -> Array | None:
         """Newton's step, or None where the system is singular."""
-        import scipy.sparse as sp
+        from scipy.sparse import csc_matrix
         from scipy.sparse.linalg import splu
 
         weights = np.zeros(self.program.rows.count)
         weights[self.equal] = multipliers[self.equal]
         numbers = self.program.numbers
-        upper = numbers.hessian_pattern.filled(numbers.hessian(z, 1.0, weights)).tocsr()
-        hessian = (upper + sp.triu(upper, 1).T)[self.free][:, self.free]
-        jacobian = self._parts(z)[2]
-        matrix = sp.bmat([[hessian, jacobian.T], [jacobian, None]], format="csc")
+        rows, starts, source = self._places
+        nonzeros = np.concatenate([numbers.hessian(z, 1.0, weights), numbers.jacobian(z)])[source]
+        matrix = csc_matrix((nonzeros, rows, starts), shape=(len(starts) - 1,) * 2)
         try:
             step = splu(matrix).solve(-residual)
         except RuntimeError:

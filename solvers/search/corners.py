@@ -79,7 +79,7 @@ def _crossings(path: Trajectory, argument: Node, edges: Array) -> Array:
 
 
 def _values(path: Trajectory, argument: Node, places: Array) -> Array:
-    states, controls = (at_points(path.breaks, modes, places) for modes in (path.state_modes(), path.control_modes()))
+    states, controls = (at_points(path.breaks, modes, places) for modes in (path.state_modes, path.control_modes))
     return Along(path.program.compiled, places, states, controls, path.parameters).value(argument)
 
 

@@ -108,6 +108,9 @@ def _next(path: Trajectory, mesh: Mesh, minimise_: Minimiser) -> tuple[Program, 
     carried = carry(path, mesh, where)
     program = make_program(compiled, mesh, where, carried.z, path.program.scales)
     warm = carried.onto(program)
+    near = minimise_.nearby(program, warm)
+    if near is not None:
+        return program, near
     for start, options in ((warm, {"ipopt.max_iter": FEW_ITERATIONS}), (Start(warm.z), {})):
         minimum = minimise_(program, start, options)
         if minimum.outcome in SOLVED:

@@ -16,6 +16,7 @@ import numpy as np
 from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
+from solvers.series import basis
 from solvers.transcription.collocation import Family
 from solvers.transcription.evaluation import mapped
 from solvers.transcription.functions import linear_controls
@@ -70,12 +71,13 @@ def estimate(path: Trajectory) -> Estimate:
     state_sizes, control_sizes = sizes_of(path.states, scales.states), sizes_of(path.controls, scales.controls)
     errors = np.zeros(len(mesh.intervals))
     shapes, bends = [], []
-    for k, (states, controls) in enumerate(zip(path.state_modes(), path.control_modes(), strict=True)):
-        columns = states / state_sizes
+    states, controls = path.state_modes / state_sizes, path.control_modes / control_sizes
+    for k, interval_ in enumerate(mesh.intervals):
+        columns = states[k, : interval_.scheme.degree + 1]
         error, worst = _tail(columns)
         shape = bend = columns[:, worst] if columns.shape[1] else np.zeros(1)
-        scaled = controls / control_sizes * weights[k]
-        kept = [index for index in loose if (mesh.intervals[k].stretch, index) in calm]
+        scaled = controls[k, : interval_.scheme.degree] * weights[k]
+        kept = [index for index in loose if (interval_.stretch, index) in calm]
         if kept:
             error = max(error, _tail(scaled[: (len(scaled) + 1) // 2, kept])[0])
         scaled[:, loose] = 0.0
@@ -104,7 +106,7 @@ def _add_excess(path: Trajectory, errors: Array) -> None:
     unequal = limits[:, 0] < limits[:, 1]
     if not bounded.any() and not unequal.any():
         return
-    states = np.stack([legendre.legvander(BETWEEN, len(modes) - 1) @ modes for modes in path.state_modes()])
+    states = basis(BETWEEN, path.state_modes.shape[1] - 1) @ path.state_modes
     excess = (
         np.maximum(lower - states, states - upper)[:, :, bounded]
         / sizes_of(path.states, path.program.scales.states)[bounded]
@@ -121,7 +123,7 @@ def _bodies_between(path: Trajectory, states: Array) -> Array:
     """Bodies of the pointwise constraints at `BETWEEN` in every interval (N x len(BETWEEN) x constraints)."""
     mesh, compiled = path.program.mesh, path.program.compiled
     lower, upper = quantity_bounds(compiled)[2:]
-    controls = np.stack([legendre.legvander(BETWEEN, len(modes) - 1) @ modes for modes in path.control_modes()])
+    controls = basis(BETWEEN, path.control_modes.shape[1] - 1) @ path.control_modes
     shape = (*states.shape[:2], 1)
     starts = np.array([path.places[i.stretch] for i in mesh.intervals])[:, None, None]
     ends = np.array([path.places[i.stretch + 1] for i in mesh.intervals])[:, None, None]

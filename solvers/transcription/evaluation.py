@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from functools import lru_cache
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import casadi as ca
 import numpy as np
@@ -22,8 +23,9 @@ CHUNK = 32
 
 
 @lru_cache(maxsize=256)
-def _by_chunks(function: ca.Function) -> ca.Function:
-    return function.map(CHUNK)
+def _by_chunks(function: ca.Function, at_once: int) -> tuple[Any, Callable[[], None]]:
+    """The memory of a function mapped over so many sets of inputs, and what evaluates it there."""
+    return (function.map(at_once) if at_once > 1 else function).buffer()
 
 
 class Mapped:
@@ -31,12 +33,10 @@ class Mapped:
 
     def __init__(self, function: ca.Function, count: int) -> None:
         self._count, self._step = count, CHUNK if count > 1 else 1
-        self._function = _by_chunks(function) if count > 1 else function
         self._padded = -(-count // self._step) * self._step
         self._inputs = [np.zeros((self._padded, function.numel_in(k))) for k in range(function.n_in())]
-        self._views = [memoryview(values) for values in self._inputs]  # type: ignore[arg-type]
         self._outputs = int(function.nnz_out(0))
-        self._buffer, self._evaluate = self._function.buffer()
+        self._buffer, self._evaluate = _by_chunks(function, self._step)
 
     def __call__(self, *arguments: Array) -> Array:
         """The nonzeros of the output (sets x nonzeros) from inputs (sets x entries, or what spreads to that)."""
@@ -46,12 +46,12 @@ class Mapped:
         for own, given in zip(self._inputs, arguments, strict=True):
             own[: self._count] = given
             own[self._count :] = own[0]
-        made = memoryview(result)  # type: ignore[arg-type]
+        views: list[Any] = [memoryview(own) for own in (*self._inputs, result)]
         for start in range(0, self._padded, self._step):
-            end = start + self._step
-            for k, view in enumerate(self._views):
-                self._buffer.set_arg(k, view[start:end])  # type: ignore[call-arg]
-            self._buffer.set_res(0, made[start:end])  # type: ignore[call-arg]
+            *inputs, made = (view[start : start + self._step] for view in views)
+            for k, view in enumerate(inputs):
+                self._buffer.set_arg(k, view)
+            self._buffer.set_res(0, made)
             self._evaluate()
         return result[: self._count]
 

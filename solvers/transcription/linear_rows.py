@@ -20,29 +20,28 @@ Indices = NDArray[np.int64]
 
 
 @dataclass(frozen=True, slots=True)
-class Alike:
-    """The intervals of one scheme: G members, their points (G x K) and the states that span them (G x (K+1) x n)."""
+class Spanned:
+    """The intervals of one scheme, their points (G x K) and the states that span them (G x (K+1) x n)."""
 
     scheme: Scheme
-    members: Indices
     points: Indices
     support: Indices
 
 
-def alike(placed: Placement) -> list[Alike]:
+def spanned(placed: Placement) -> list[Spanned]:
     """The intervals of a mesh by scheme."""
-    where, intervals = placed.layout, placed.mesh.intervals
-    owners = np.array([id(i.scheme) for i in intervals])
-    groups = []
-    for key, scheme in {id(i.scheme): i.scheme for i in intervals}.items():
-        members = np.flatnonzero(owners == key)
-        points = where.first[members][:, None] + np.arange(scheme.degree)
-        support = np.concatenate([where.nodes[members][:, None, :], where.inner[points]], axis=1)
-        groups.append(Alike(scheme, members, points, support))
-    return groups
+    where = placed.layout
+    return [
+        Spanned(
+            group.scheme,
+            group.points,
+            np.concatenate([where.nodes[group.members][:, None, :], where.inner[group.points]], axis=1),
+        )
+        for group in placed.mesh.alike
+    ]
 
 
-def slopes(groups: list[Alike], z: Array) -> Array:
+def slopes(groups: list[Spanned], z: Array) -> Array:
     """Slopes of the states at all points, point by point, relative to the states' sizes."""
     points = sum(group.points.size for group in groups)
     found = np.empty((points, groups[0].support.shape[2]))
@@ -55,13 +54,13 @@ Block = tuple[Indices, Indices, Array]
 """Rows, columns and values (SI) of constant entries of g."""
 
 
-def slope_entries(placed: Placement, groups: list[Alike]) -> Iterator[Block]:
+def slope_entries(placed: Placement, groups: list[Spanned]) -> Iterator[Block]:
     """The entries of the slopes of the states."""
     n = placed.compiled.point.states
     for group in groups:
         degree = group.scheme.degree
         row = placed.rows.defects + group.points[:, :, None] * n + np.arange(n)  # G x K x n
-        shape = (len(group.members), degree, degree + 1, n)
+        shape = (len(group.points), degree, degree + 1, n)
         yield (
             np.broadcast_to(row[:, :, None, :], shape).ravel(),
             np.broadcast_to(group.support[:, None, :, :], shape).ravel(),

@@ -8,9 +8,11 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass
+from functools import cached_property
 from itertools import pairwise
 
 import numpy as np
+from numpy.typing import NDArray
 
 from solvers.transcription.collocation import Family, Scheme, scheme
 
@@ -26,6 +28,15 @@ class Interval:
 
 
 @dataclass(frozen=True, slots=True)
+class Alike:
+    """The intervals of one scheme of degree K: the G `members`, and the indices of their points (G x K)."""
+
+    scheme: Scheme
+    members: NDArray[np.int64]
+    points: NDArray[np.int64]
+
+
+@dataclass(frozen=True)
 class Mesh:
     """Intervals in order; every stretch is covered from 0 to 1."""
 
@@ -40,6 +51,18 @@ class Mesh:
     def stretches(self) -> int:
         """How many stretches there are."""
         return self.intervals[-1].stretch + 1
+
+    @cached_property
+    def alike(self) -> list[Alike]:
+        """The intervals by scheme."""
+        owners = np.array([id(i.scheme) for i in self.intervals])
+        degrees = np.array([i.scheme.degree for i in self.intervals])
+        first = np.cumsum(degrees) - degrees
+        groups = []
+        for key, scheme_ in {id(i.scheme): i.scheme for i in self.intervals}.items():
+            members = np.flatnonzero(owners == key)
+            groups.append(Alike(scheme_, members, first[members][:, None] + np.arange(scheme_.degree)))
+        return groups
 
     def breaks(self, places: np.ndarray) -> np.ndarray:
         """The ends of all intervals as values of the independent variable, from the values of the places."""

@@ -16,7 +16,7 @@ from solvers.transcription.entries import Entries, Pattern, Recipe, counted
 from solvers.transcription.evaluation import Mapped
 from solvers.transcription.functions import Compiled
 from solvers.transcription.layout import Layout, Rows
-from solvers.transcription.linear_rows import alike, loose_rows, slope_entries, slopes
+from solvers.transcription.linear_rows import loose_rows, slope_entries, slopes, spanned
 from solvers.transcription.mesh import Mesh
 
 Array = NDArray[np.float64]
@@ -67,8 +67,9 @@ class Numbers:
         self._take(placed.compiled.constants)
         self._point = {kind: Mapped(getattr(point, kind), self.count) for kind in ("value", "jacobian", "hessian")}
         self._end = {kind: Mapped(getattr(end, kind), 1) for kind in ("value", "jacobian", "hessian")}
-        self._alike = alike(placed)
-        self._linear = _linear(placed)
+        self._spanned = spanned(placed)
+        self._loose = list(loose_rows(placed))
+        self._linear = self._gathered()
         self._jacobian, self._gradient, self._hessian = self._recipes()
 
     def _take(self, constants: tuple[float, ...]) -> None:
@@ -111,7 +112,7 @@ class Numbers:
         outputs, end = self._outputs(z)
         columns, rank, values = self._linear
         g = counted(rank, values * z[columns], rows.count)
-        g[: rows.ends] = (outputs[:, :n] * self.factor[:, :n]).ravel() + slopes(self._alike, z)
+        g[: rows.ends] = (outputs[:, :n] * self.factor[:, :n]).ravel() + slopes(self._spanned, z)
         g[rows.pointwise : rows.rims] = (outputs[:, n : n + c] * self.factor[:, n : n + c]).ravel()
         g[rows.integrals : rows.conditions] += (outputs[:, n + c : -1] * self.factor[:, n + c :]).sum(axis=0)
         g[rows.conditions :] = end[:-1] / placed.row_scale[rows.conditions :]
@@ -166,26 +167,33 @@ class Numbers:
                                                     self._end["jacobian"](y, self._constants).ravel()])  # fmt: skip
         return self._known["slopes"]
 
-    def _moving(self, columns: Indices) -> NDArray[np.bool_]:
-        """Of inputs of the point function those that are not fixed places all along: these need no derivatives."""
+    def _moving(self) -> NDArray[np.bool_]:
+        """The inputs of the point function that are not fixed places all along: only these need derivatives."""
         placed, point = self._placed, self._placed.compiled.point
-        first = point.states + point.controls
-        still = [k for k in (first, first + 1) if placed.fixed[placed.gather[:, k]].all()]
-        return ~np.isin(columns, still)
+        moving = np.ones(point.inputs, dtype=bool)
+        for place in (point.states + point.controls, point.states + point.controls + 1):
+            moving[place] = not placed.fixed[placed.gather[:, place]].all()
+        return moving
+
+    def _gathered(self) -> tuple[Indices, Indices, Array]:
+        """Columns, rows and values (scaled) of the linear rows that are no defects."""
+        rows, columns, values = (np.concatenate(parts) for parts in zip(*self._loose, strict=True))
+        return columns, rows, values * self._placed.scale[columns] / self._placed.row_scale[rows]
 
     def _recipes(self) -> tuple[Recipe, Recipe, Recipe]:
         """Of the Jacobian of g, of the gradient of f, of the Hessian's upper triangle."""
         placed, point, end = self._placed, self._placed.compiled.point, self._placed.compiled.end
         size, scale, row_scale = placed.layout.size, placed.scale, placed.row_scale
         jacobian, gradient, hessian = Entries(), Entries(), Entries()
-        for row, columns, values in (*loose_rows(placed), *slope_entries(placed, self._alike)):
+        moving = self._moving()
+        for row, columns, values in (*self._loose, *slope_entries(placed, self._spanned)):
             jacobian.add(row, columns, values * scale[columns] / row_scale[row])
         out, by = np.array(point.jacobian_rows, int), np.array(point.jacobian_columns, int)
-        each, moving = np.arange(self.count)[:, None] * len(out), self._moving(by)
-        inside = np.flatnonzero((out < point.outputs - 1) & moving)
+        each = np.arange(self.count)[:, None] * len(out)
+        inside = np.flatnonzero((out < point.outputs - 1) & moving[by])
         columns, own = placed.gather[:, by[inside]], out[inside]
         jacobian.add(self.target[:, own], columns, self.factor[:, own] * scale[columns], each + inside)
-        inside = np.flatnonzero((out == point.outputs - 1) & moving)
+        inside = np.flatnonzero((out == point.outputs - 1) & moving[by])
         columns = placed.gather[:, by[inside]]
         gradient.add(columns, 0, self.cost[:, None] * scale[columns], each + inside)
         offset = self.count * len(out)
@@ -197,7 +205,7 @@ class Numbers:
         columns = placed.end_gather[by[inside]]
         gradient.add(columns, 0, self.value_factor * scale[columns], offset + inside)
         first, second = np.array(point.hessian_rows, int), np.array(point.hessian_columns, int)
-        inside = np.flatnonzero(self._moving(first) & self._moving(second))
+        inside = np.flatnonzero(moving[first] & moving[second])
         sources = np.arange(self.count)[:, None] * len(first) + inside
         offset = self.count * len(first)
         first, second = first[inside], second[inside]
@@ -217,12 +225,3 @@ class Numbers:
         scale = self._placed.scale
         values = scale[first] * scale[second] * np.where(mixed & (first == second), 2.0, 1.0)
         entries.add(np.minimum(first, second), np.maximum(first, second), values, sources)
-
-
-def _linear(placed: Placement) -> tuple[Indices, Indices, Array]:
-    """Columns, rows and values (scaled) of the linear rows that are no defects."""
-    blocks = list(loose_rows(placed))
-    rows = np.concatenate([row for row, _, _ in blocks])
-    columns = np.concatenate([column for _, column, _ in blocks])
-    values = np.concatenate([value for _, _, value in blocks])
-    return columns, rows, values * placed.scale[columns] / placed.row_scale[rows]

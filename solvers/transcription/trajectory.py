@@ -7,14 +7,17 @@ Automatica 46, section 4 (from memory): costate = -multiplier / quadrature weigh
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
 
-from solvers.curve import Curve, side_by_side
+from solvers.curve import Curve
 from solvers.minimise.ipopt import Minimum, Start
 from solvers.problem import Problem, Seek
+from solvers.series import basis
 from solvers.transcription.collocation import Family
 from solvers.transcription.functions import Compiled
 from solvers.transcription.layout import Layout, row_order
@@ -32,7 +35,7 @@ BINDING = 1e-5
 """Least push of a pointwise constraint that binds, over its size and relative to the value's."""
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(frozen=True)
 class Trajectory:
     """One solved (or guessed) mesh, in SI (N intervals, M points, n states, m controls, c pointwise constraints).
 
@@ -56,28 +59,44 @@ class Trajectory:
     bound_multipliers: Array
     row_multipliers: Array
 
-    def state_modes(self) -> list[Array]:
-        """Legendre coefficients of the states, (K+1) x n for each interval."""
-        return _modes(self.program, self.states, self.nodes)
+    @cached_property
+    def state_modes(self) -> Array:
+        """Legendre coefficients of the states (N x (largest K + 1) x n), zero beyond the K + 1 of each interval."""
+        return _modes(self.program.mesh, self.states, self.nodes)
 
-    def control_modes(self) -> list[Array]:
-        """Legendre coefficients of the controls, K x m for each interval."""
-        return _modes(self.program, self.controls, None)
+    @cached_property
+    def control_modes(self) -> Array:
+        """Legendre coefficients of the controls (N x largest K x m)."""
+        return _modes(self.program.mesh, self.controls)
 
-    def costate_modes(self) -> list[Array]:
-        """Legendre coefficients of the costates, K x n for each interval."""
-        return _modes(self.program, self.costates, None)
+    @cached_property
+    def costate_modes(self) -> Array:
+        """Legendre coefficients of the costates (N x largest K x n)."""
+        return _modes(self.program.mesh, self.costates)
+
+    @cached_property
+    def multiplier_modes(self) -> Array:
+        """Legendre coefficients of the multipliers of the pointwise constraints (N x largest K x c)."""
+        return _modes(self.program.mesh, self.multipliers)
+
+    def pieces(self, modes: Array) -> Iterable[Array]:
+        """Coefficients of one quantity (N x largest degree) without the zeros that fill them up."""
+        own = modes.shape[1] - max(i.scheme.degree for i in self.program.mesh.intervals)  # one more for states
+        return (part[: i.scheme.degree + own] for part, i in zip(modes, self.program.mesh.intervals, strict=True))
 
 
-def _modes(program: Program, values: Array, nodes: Array | None) -> list[Array]:
-    first = program.layout.first
-    modes = []
-    for k, interval in enumerate(program.mesh.intervals):
-        inside = values[first[k] : first[k + 1]]
+def _modes(mesh: Mesh, values: Array, nodes: Array | None = None) -> Array:
+    """Coefficients in every interval from the values at its points, and at its left node where there is one."""
+    groups = mesh.alike
+    own = 0 if nodes is None else 1
+    modes = np.zeros((len(mesh.intervals), max(g.scheme.degree for g in groups) + own, values.shape[1]))
+    for group in groups:
+        inside = values[group.points]
         if nodes is None:
-            modes.append(interval.scheme.control_modes @ inside)
+            modes[group.members, : group.scheme.degree] = group.scheme.control_modes @ inside
         else:
-            modes.append(interval.scheme.state_modes @ np.vstack([nodes[k], inside]))
+            support = np.concatenate([nodes[group.members][:, None], inside], axis=1)
+            modes[group.members, : group.scheme.degree + 1] = group.scheme.state_modes @ support
     return modes
 
 
@@ -134,12 +153,10 @@ def curve(path: Trajectory) -> Curve:
     """Every unknown with its derivatives up to its order."""
     lowered = path.program.compiled.lowered
     functions: dict[str, tuple[Array, ...]] = {}
-    states, controls = path.state_modes(), path.control_modes()
     widths = np.diff(path.breaks)
-    for index, quantity in enumerate(lowered.states):
-        functions[primed(quantity)] = tuple(modes[:, index] for modes in states)
-    for index, quantity in enumerate(lowered.controls):
-        functions[primed(quantity)] = tuple(modes[:, index] for modes in controls)
+    for quantities, modes in ((lowered.states, path.state_modes), (lowered.controls, path.control_modes)):
+        for index, quantity in enumerate(quantities):
+            functions[primed(quantity)] = tuple(path.pieces(modes[:, :, index]))
     for name, order in lowered.given:
         below = functions[primed((name, order - 1))]
         functions[primed((name, order))] = tuple(
@@ -152,18 +169,16 @@ def costate_curve(path: Trajectory) -> Curve:
     """The costates, and the multipliers of the pointwise constraints that bind, in the user's sense of better."""
     compiled = path.program.compiled
     sign = -1.0 if compiled.lowered.problem.seek is Seek.MAXIMUM else 1.0
-    modes = path.costate_modes()
     functions = {
-        primed(quantity): tuple(sign * part[:, index] for part in modes)
+        primed(quantity): tuple(path.pieces(sign * path.costate_modes[:, :, index]))
         for index, quantity in enumerate(compiled.lowered.states)
     }
     rows = path.program.rows
     sizes = path.program.row_scale[rows.pointwise : rows.rims].reshape(path.multipliers.shape)
     pushes = np.abs(path.row_multipliers[rows.pointwise : rows.rims].reshape(sizes.shape) * sizes).sum(axis=0)
-    multiplier_modes = _modes(path.program, path.multipliers, None)
     for index, condition in enumerate(compiled.pointwise):
         if pushes[index] > BINDING * abs(path.program.value_scale):
-            functions[condition.label] = tuple(sign * part[:, index] for part in multiplier_modes)
+            functions[condition.label] = tuple(path.pieces(sign * path.multiplier_modes[:, :, index]))
     return Curve(path.breaks, functions)
 
 
@@ -193,12 +208,12 @@ def carry(path: Trajectory, mesh: Mesh, where: Layout) -> Carried:
 
     rows = np.zeros(order.count)
     weights = np.concatenate([i.scheme.weights for i in mesh.intervals])
-    costates = at_points(path.breaks, path.costate_modes(), points)
+    costates = at_points(path.breaks, path.costate_modes, points)
     rows[: order.ends] = (-costates * weights[:, None]).ravel()
     gauss = [k for k, i in enumerate(mesh.intervals) if i.scheme.family is Family.GAUSS]
     rows[order.ends : order.pointwise] = costates[where.first[np.array(gauss, int) + 1] - 1].ravel()
     measures = where.measures * where.lengths(path.places)
-    density = at_points(path.breaks, _modes(source, path.multipliers, None), points)
+    density = at_points(path.breaks, path.multiplier_modes, points)
     rows[order.pointwise : order.rims] = (density * measures[:, None]).ravel()
     if order.integrals - order.rims == source.rows.integrals - source.rows.rims:
         rows[order.rims : order.integrals] = path.row_multipliers[source.rows.rims : source.rows.integrals]
@@ -216,20 +231,18 @@ def carry(path: Trajectory, mesh: Mesh, where: Layout) -> Carried:
 
 def _draw(z: Array, path: Trajectory, where: Layout, breaks: Array, points: Array) -> None:
     """Put the curve of a path into the variables of another layout."""
-    z[where.nodes] = at_points(path.breaks, path.state_modes(), breaks)
-    z[where.inner] = at_points(path.breaks, path.state_modes(), points)
-    z[where.controls] = at_points(path.breaks, path.control_modes(), points)
+    z[where.nodes] = at_points(path.breaks, path.state_modes, breaks)
+    z[where.inner] = at_points(path.breaks, path.state_modes, points)
+    z[where.controls] = at_points(path.breaks, path.control_modes, points)
 
 
-def at_points(breaks: Array, modes: list[Array], places: Array) -> Array:
+def at_points(breaks: Array, modes: Array, places: Array) -> Array:
     """Piecewise polynomials at places of another mesh (len(places) x components)."""
     rounding = 4 * np.finfo(float).eps * np.abs(breaks).max()  # a point at a right end stays with what ends there
     owner = np.clip(np.searchsorted(breaks, places - rounding, side="left") - 1, 0, len(modes) - 1)
     left, right = breaks[owner], breaks[owner + 1]
     local = np.clip((2 * places - left - right) / (right - left), -1.0, 1.0)
-    coefficients = side_by_side(modes)
-    shapes = np.polynomial.legendre.legvander(local, coefficients.shape[1] - 1)
-    return np.asarray((shapes[:, None, :] @ coefficients[owner])[:, 0, :])
+    return np.asarray((basis(local, modes.shape[1] - 1)[:, None, :] @ modes[owner])[:, 0, :])
 
 
 def distance(now: Trajectory, before: Trajectory) -> float:
@@ -237,7 +250,7 @@ def distance(now: Trajectory, before: Trajectory) -> float:
     if now.states.shape[1] == 0:
         return 0.0
     now_at, before_at = _fractions(now), _fractions(before)
-    values = at_points(before_at[0], before.state_modes(), now_at[1])
+    values = at_points(before_at[0], before.state_modes, now_at[1])
     differences = np.abs(values - now.states).max(axis=0)
     return float((differences / sizes_of(now.states, now.program.scales.states)).max())
 
