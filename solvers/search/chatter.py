@@ -14,12 +14,15 @@ from __future__ import annotations
 from dataclasses import dataclass, replace
 
 import numpy as np
+from numpy.typing import NDArray
 
 from solvers.formula.nodes import Name
 from solvers.problem import Held, Parameter, Place, Problem
 from solvers.search.structure import SWITCH
 from solvers.transcription.lowering import Quantity
 from solvers.transcription.trajectory import Trajectory
+
+Array = NDArray[np.float64]
 
 FASTEST = 0.6
 """Greatest ratio of successive times that counts as shrinking."""
@@ -74,33 +77,43 @@ def _side(problem: Problem, quantity: Quantity, stretch: int) -> int:
 
 
 def one_more(path: Trajectory) -> Problem | None:
-    """The problem of a chattering path with its next switch as one more place; None where it does not chatter."""
+    """The problem of a chattering path with its next switch as one more place; None where it does not chatter.
+
+    The last switch makes up for all that would follow: where two times before it tell the series, it is moved too.
+    """
     found = chatter(path)
     if found is None:
         return None
     problem = path.program.compiled.lowered.problem
-    new, ratio = found.last + 1, found.ratio or EXPECTED
-    at, end = float(path.places[new]), float(path.places[new + 1])
-    place = at + ratio * (at - float(path.places[found.last]))
+    new, end = found.last + 1, float(path.places[found.last + 2])
+    times = np.diff(path.places)[found.first + 1 : new]
+    ratio, time = found.ratio or EXPECTED, float(times[-1])
+    if len(times) > 2:
+        ratio = float(np.median(times[1:-1] / times[:-2]))
+        time = ratio * float(times[-2])
+    at = float(path.places[found.last]) + time
+    place = at + ratio * time
+    places = np.insert(path.places, new + 1, place)
+    places[new] = at
     name = f"{SWITCH} {1 + sum(p.label.startswith(SWITCH + ' ') for p in problem.places)}"
     side = -_side(problem, found.control, found.last)
     parameter = Parameter(name, place - 0.9 * (place - at), place + 0.45 * (end - place), place)
     return replace(
         problem,
         places=(*problem.places[: new + 1], Place(Name(name), name), *problem.places[new + 1 :]),
-        parameters=(*(_roomy(p, path, problem, place) for p in problem.parameters), parameter),
+        parameters=(*(_roomy(p, places, problem) for p in problem.parameters), parameter),
         held=(*(replace(h, stretch=h.stretch + (h.stretch >= new)) for h in problem.held),
               Held(new, *found.control, side)),
         calm=tuple(replace(c, stretch=c.stretch + (c.stretch >= new)) for c in problem.calm),
     )  # fmt: skip
 
 
-def _roomy(parameter: Parameter, path: Trajectory, problem: Problem, new: float) -> Parameter:
-    """A switch with the room that its neighbours leave now, the new one included."""
+def _roomy(parameter: Parameter, places: Array, problem: Problem) -> Parameter:
+    """A switch with the room that its neighbours leave now."""
     labels = [place.label for place in problem.places]
     if parameter.name not in labels or not parameter.name.startswith(SWITCH + " "):
         return parameter
-    at = float(path.places[labels.index(parameter.name)])
-    others = np.append(path.places, new)
-    low, high = others[others < at].max(), others[others > at].min()
+    k = labels.index(parameter.name)
+    at = float(places[k])
+    low, high = places[places < at].max(), places[places > at].min()
     return Parameter(parameter.name, at - 0.45 * (at - low), at + 0.45 * (high - at), at, parameter.unit)

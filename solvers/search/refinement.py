@@ -31,7 +31,8 @@ SMOOTH = 0.45
 """Least fall per degree, in powers of ten, of the coefficients of a curve that counts as smooth."""
 HALVED = float(np.log10(2.0))
 """How much faster coefficients fall per degree on half an interval."""
-SPARE = 1
+LEAST_HALF = 5
+"""Least degree of the halves of an interval that is smooth by itself."""
 NARROWEST = 1e-11
 """Least width of an interval, relative to the whole."""
 END_DEGREE = 6
@@ -169,25 +170,32 @@ def _bend(modes: Array) -> float:
 
 
 def refine(path: Trajectory, found: Estimate, tolerance: float) -> Mesh:
-    """A better mesh for a local tolerance."""
+    """A better mesh for a local tolerance.
+
+    Where the curve is smooth all along, it is made to suffice at once: one degree to spare, as the fall of coefficients
+    is known from a few, and halves of the degree that they will need.  Else other meshes follow anyway.
+    """
     mesh = path.program.mesh
-    span = abs(path.breaks[-1] - path.breaks[0])
+    widths = np.diff(path.breaks) / (path.breaks[-1] - path.breaks[0])
+    falls = [max(_fall(shape), 1e-3) for shape in found.shapes]
+    smooth = all(fall >= SMOOTH or error <= tolerance for fall, error in zip(falls, found.errors, strict=True))
     pieces: list[Interval] = []
     for k, old in enumerate(mesh.intervals):
-        width = abs(path.breaks[k + 1] - path.breaks[k]) / span
-        pieces.extend(_replace(old, found, k, tolerance, width))
+        if found.errors[k] <= tolerance:
+            pieces.append(old)
+        else:
+            missing = float(np.log10(found.errors[k] / tolerance))
+            pieces.extend(_replace(old, missing, falls[k], found.bends[k], float(widths[k]), smooth))
     return Mesh(tuple(pieces))
 
 
-def _replace(old: Interval, found: Estimate, k: int, tolerance: float, width: float) -> Iterator[Interval]:
+def _replace(
+    old: Interval, missing: float, fall: float, bends: Array, width: float, smooth: bool
+) -> Iterator[Interval]:
+    """One interval by better ones, to gain so many powers of ten."""
     family, degree = old.scheme.family, old.scheme.degree
     start, end = old.start, old.start + old.width
-    if found.errors[k] <= tolerance:
-        yield old
-        return
-    fall = max(_fall(found.shapes[k]), 1e-3)
-    missing = np.log10(found.errors[k] / tolerance)
-    wanted = _degree(degree, missing, fall)
+    wanted = _degree(degree, missing, fall, smooth)
     if fall >= SMOOTH and wanted <= HIGHEST_DEGREE:
         yield interval(old.stretch, start, end, family, wanted)
         return
@@ -196,9 +204,10 @@ def _replace(old: Interval, found: Estimate, k: int, tolerance: float, width: fl
         return
     if fall >= SMOOTH:  # smooth but far from resolved: halves of a higher degree
         cuts = [0.5]
-        degree = _degree(degree, missing - HALVED * degree, fall + HALVED)
+        needed = _degree(degree, missing - HALVED * degree, fall + HALVED, smooth) if smooth else LEAST_HALF
+        degree = min(max(degree, needed), HIGHEST_DEGREE)
     else:
-        bend = _bend(found.bends[k])
+        bend = _bend(bends)
         if bend < END_CUT:
             cuts = [END_CUT]
         elif bend > 1 - END_CUT:
@@ -214,9 +223,9 @@ def _replace(old: Interval, found: Estimate, k: int, tolerance: float, width: fl
         yield interval(old.stretch, left, right, family if touching else Family.RADAU, degree)
 
 
-def _degree(degree: int, missing: float, fall: float) -> int:
-    """The degree at which so many powers of ten are gained; one more, as the fall is known from a few coefficients."""
-    return degree + max(1, int(np.ceil(missing / fall)) + SPARE)
+def _degree(degree: int, missing: float, fall: float, spare: bool) -> int:
+    """The degree at which so many powers of ten are gained, or one more."""
+    return degree + max(1, int(np.ceil(missing / fall)) + spare)
 
 
 def finer(mesh: Mesh) -> Mesh:

@@ -86,22 +86,25 @@ def _with_structure(base: Pursuit, path: Trajectory, watch: Watch | None, deadli
 
 
 def _with_more_switches(base: Pursuit, sharp: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit:
-    """Where the control chatters, the same with so many switches that those after them do not count any more."""
+    """Where the control chatters, the same with so many switches that those after them do not count any more.
+
+    What follows the last one is not refined: finer meshes would only show more of the chattering.
+    """
+    last, error = sharp, float("inf")
     for _ in range(MOST_CHATTER):
-        if sharp.end is End.CONVERGED or deadline.over or sharp.value_met_before:
+        if last.end is End.CONVERGED or deadline.over:
             break
-        path = sharp.paths[-1]
+        path = last.paths[-1]
         changed = one_more(path)
         if changed is None:
             break
         pursuit = pursue(changed, watch, deadline, meshes=2, start=path, mesh=_mesh(changed))
         if not pursuit.solved or _at_the_edge(pursuit.paths[-1]) or not _agrees(pursuit, base):
             break
-        pursuit = go_on(pursuit, watch, deadline, 4)
-        if pursuit.value_error > sharp.value_error:
+        if pursuit.value_error > error:
             break
-        sharp = pursuit
-    return sharp
+        last, error = pursuit, pursuit.value_error
+    return last if last.shown or last.value_error <= sharp.value_error else sharp
 
 
 def _at_the_edge(path: Trajectory) -> bool:

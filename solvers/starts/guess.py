@@ -8,13 +8,14 @@ fit the lines best.  What the user gives as a guess is kept as it is.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from solvers.problem import Parameter, Problem
-from solvers.starts.sketch import Bend, sketch
+from solvers.starts.sketch import Bend, Sketch
 from solvers.transcription.evaluation import end_outputs, point_outputs
 from solvers.transcription.functions import Compiled
 from solvers.transcription.layout import Layout
@@ -22,6 +23,7 @@ from solvers.transcription.limits import constants_of, interval_of, number
 from solvers.transcription.mesh import Mesh
 
 Array = NDArray[np.float64]
+Limits = Sequence[tuple[float, float]]
 
 BENDS = (*(Bend(size) for size in (0.1, -0.1, 0.3, -0.3, 1.0, -1.0)), Bend(0.3, 2), Bend(1.0, 2))
 """Bends that are tried."""
@@ -36,7 +38,7 @@ class Guess:
 
     z: Array
     violation: float
-    bent: bool
+    bent: bool = False
 
 
 def guesses(compiled: Compiled, mesh: Mesh, where: Layout) -> list[Guess]:
@@ -48,20 +50,27 @@ def guesses(compiled: Compiled, mesh: Mesh, where: Layout) -> list[Guess]:
         parameters[where.parameters == index] = place
     _size_parameters(compiled, mesh, where, places, parameters)
     _vary_parameters(problem, places, parameters, where)
-    found = [_guess(compiled, mesh, where, places, parameters, Bend())]
+    sketch = Sketch(compiled, mesh, where, places, parameters)
+    limits = _limits(compiled)
+    found = [_guess(compiled, where, sketch.bent(Bend()), limits)]
     if found[0].violation > 1e-3:
-        found += [_guess(compiled, mesh, where, places, parameters, bend) for bend in BENDS]
+        found += [replace(_guess(compiled, where, sketch.bent(bend), limits), bent=True) for bend in BENDS]
     # A bend must be clearly better than none.
     return sorted(found, key=lambda guess: guess.violation * (1.1 if guess.bent else 1.0))
 
 
-def _guess(compiled: Compiled, mesh: Mesh, where: Layout, places: Array, parameters: Array, bend: Bend) -> Guess:
-    z = sketch(compiled, mesh, where, places, parameters, bend)
+def _guess(compiled: Compiled, where: Layout, z: Array, limits: Limits) -> Guess:
     first = compiled.point.states + compiled.point.constraints
     outputs = point_outputs(compiled, where, z)
     totals = where.measures @ outputs[:, first : first + compiled.point.integrals]
     z[where.integrals] = np.where(np.isfinite(totals), totals, 0.0)
-    return Guess(z, _violation(compiled, where, z, outputs), bent=bend.size != 0)
+    return Guess(z, _violation(compiled, where, z, outputs, limits))
+
+
+def _limits(compiled: Compiled) -> Limits:
+    """The least and the greatest value of every pointwise constraint, then of every condition."""
+    constants = constants_of(compiled)
+    return [interval_of(condition, constants) for condition in (*compiled.pointwise, *compiled.conditions)]
 
 
 def first_value(parameter: Parameter) -> float:
@@ -107,7 +116,7 @@ def _size_parameters(compiled: Compiled, mesh: Mesh, where: Layout, places: Arra
     misfits = []
     for power in POWERS:
         parameters[open_ended] = base[open_ended] * 10.0**power
-        z = sketch(compiled, mesh, where, places, parameters, Bend())
+        z = Sketch(compiled, mesh, where, places, parameters).bent(Bend())
         misfits.append(_misfit(compiled, where, z))
     least = min(misfits)
     # The size nearest to one among those that fit as well as the best.
@@ -154,21 +163,18 @@ def _misfit(compiled: Compiled, where: Layout, z: Array) -> float:
     return misfit if np.isfinite(misfit) else np.inf
 
 
-def _violation(compiled: Compiled, where: Layout, z: Array, outputs: Array) -> float:
+def _violation(compiled: Compiled, where: Layout, z: Array, outputs: Array, limits: Limits) -> float:
     """How much of the problem a guess violates: undefined values first, then constraints and conditions."""
     point = compiled.point
-    constants = constants_of(compiled)
     end = end_outputs(compiled, where, z)
     undefined = float(np.mean(~np.isfinite(outputs))) + float(np.mean(~np.isfinite(end)))
     total = 0.0
     pointwise = outputs[:, point.states : point.states + point.constraints]
-    for values, condition in (*zip(pointwise.T, compiled.pointwise, strict=True),
-                              *zip(end[:-1], compiled.conditions, strict=True)):  # fmt: skip
-        lower, upper = interval_of(condition, constants)
-        finite = np.atleast_1d(values)[np.isfinite(np.atleast_1d(values))]
+    for values, (lower, upper) in zip((*pointwise.T, *end[:-1, None]), limits, strict=True):
+        finite = values[np.isfinite(values)]
         if len(finite) == 0:
             continue
         excess = float(np.mean(np.maximum(np.maximum(lower - finite, finite - upper), 0.0)))
-        limits = [abs(limit) for limit in (lower, upper) if np.isfinite(limit)]
-        total += excess / max(float(np.abs(finite).max()), *limits) if excess else 0.0
+        sizes = [abs(limit) for limit in (lower, upper) if np.isfinite(limit)]
+        total += excess / max(float(np.abs(finite).max()), *sizes) if excess else 0.0
     return 1e3 * undefined + total

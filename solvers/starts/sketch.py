@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from functools import lru_cache
 from typing import Any
 
 import numpy as np
@@ -41,44 +42,58 @@ class Bend:
     waves: int = 1
 
 
-def sketch(compiled: Compiled, mesh: Mesh, where: Layout, places: Array, parameters: Array, bend: Bend) -> Array:
-    """All variables (SI) but the integrals, which stay zero."""
-    lowered = compiled.lowered
-    problem = lowered.problem
-    nodes = mesh.breaks(places)
-    grid, back = np.unique(np.concatenate([nodes, where.points(places)]), return_inverse=True)
-    z = np.zeros(where.size)
-    z[where.places], z[where.parameters] = places, parameters
-    known = _known_values(compiled)
-    bounds = _bounds(compiled)
-    numbers = constants_of(compiled) | {p.name: float(v) for p, v in zip(problem.parameters, parameters, strict=True)}
-    for turn, unknown in enumerate(problem.unknowns):
-        if unknown.guess is not None:
-            rows = [given_values(unknown.guess, grid, numbers, problem.independent)]
-            for order in range(1, unknown.order + 1):
-                lines = order == 1 and isinstance(unknown.guess, tuple)
-                rows.append(_slopes(unknown.guess, grid) if lines else np.gradient(rows[-1], grid))
-        else:
-            rows = _lines(unknown, grid, places, known, between(*bounds[unknown.name, 0]))
-        if bend.size and unknown.order and (unknown.guess is None or unknown.sketched):
-            _add(bend, rows, (grid - places[0]) / (places[-1] - places[0]), places[-1] - places[0], turn)
-        modes = problem.start.modes.get(unknown.name, ())
-        if modes:
-            held = {index for index, _ in known.get((unknown.name, 0), ())}
-            ends = (0 in held, len(places) - 1 in held)
-            _vary(modes, rows, grid - places[0], places[-1] - places[0], bounds[unknown.name, 0], ends)
-        for order, row in enumerate(rows):
-            quantity = (unknown.name, order)
-            if quantity not in bounds:
-                continue
-            values = np.clip(row, *bounds[quantity])[back]
-            if quantity in lowered.states:
-                k = lowered.states.index(quantity)
-                z[where.inner[:, k]] = values[len(nodes) :]
-                z[where.nodes[:, k]] = values[: len(nodes)]
-            else:
-                z[where.controls[:, lowered.controls.index(quantity)]] = values[len(nodes) :]
-    return z
+class Sketch:
+    """The lines of one guess on a mesh, which any bend is added to."""
+
+    def __init__(self, compiled: Compiled, mesh: Mesh, where: Layout, places: Array, parameters: Array) -> None:
+        self._compiled, self._where = compiled, where
+        self._places, self._parameters = places, parameters
+        self._bounds = _bounds(compiled)
+        nodes = mesh.breaks(places)
+        self._grid, self._back = np.unique(np.concatenate([nodes, where.points(places)]), return_inverse=True)
+        self._nodes = len(nodes)
+        self._known = _known_values(compiled)
+        self._rows = [self._drawn(unknown) for unknown in compiled.lowered.problem.unknowns]
+
+    def _drawn(self, unknown: Unknown) -> list[Array]:
+        """An unknown and its derivatives on the grid."""
+        problem, grid = self._compiled.lowered.problem, self._grid
+        if unknown.guess is None:
+            return _lines(unknown, grid, self._places, self._known, between(*self._bounds[unknown.name, 0]))
+        given = {p.name: float(v) for p, v in zip(problem.parameters, self._parameters, strict=True)}
+        rows = [given_values(unknown.guess, grid, constants_of(self._compiled) | given, problem.independent)]
+        for order in range(1, unknown.order + 1):
+            lines = order == 1 and isinstance(unknown.guess, tuple)
+            rows.append(_slopes(unknown.guess, grid) if lines else np.gradient(rows[-1], grid))
+        return rows
+
+    def bent(self, bend: Bend) -> Array:
+        """All variables (SI) but the integrals, which stay zero."""
+        lowered, where, grid = self._compiled.lowered, self._where, self._grid
+        start, span = self._places[0], self._places[-1] - self._places[0]
+        z = np.zeros(where.size)
+        z[where.places], z[where.parameters] = self._places, self._parameters
+        for turn, (unknown, drawn) in enumerate(zip(lowered.problem.unknowns, self._rows, strict=True)):
+            rows = list(drawn)
+            if bend.size and unknown.order and (unknown.guess is None or unknown.sketched):
+                _add(bend, rows, (grid - start) / span, span, turn)
+            modes = lowered.problem.start.modes.get(unknown.name, ())
+            if modes:
+                held = {index for index, _ in self._known.get((unknown.name, 0), ())}
+                ends = (0 in held, len(self._places) - 1 in held)
+                _vary(modes, rows, grid - start, span, self._bounds[unknown.name, 0], ends)
+            for order, row in enumerate(rows):
+                quantity = (unknown.name, order)
+                if quantity not in self._bounds:
+                    continue
+                values = np.clip(row, *self._bounds[quantity])[self._back]
+                if quantity in lowered.states:
+                    k = lowered.states.index(quantity)
+                    z[where.inner[:, k]] = values[self._nodes :]
+                    z[where.nodes[:, k]] = values[: self._nodes]
+                else:
+                    z[where.controls[:, lowered.controls.index(quantity)]] = values[self._nodes :]
+        return z
 
 
 def _bounds(compiled: Compiled) -> dict[Quantity, tuple[float, float]]:
@@ -141,14 +156,18 @@ def _lines(
 
 def _add(bend: Bend, rows: list[Array], fraction: Array, span: float, turn: int) -> None:
     """Add a bend that is flat enough at both ends for the unknown's order; every second unknown is out of step."""
-    order = len(rows) - 1
     size = float(np.abs(rows[0]).max()) or abs(span)
-    shape = polynomial.polypow([0.0, 4.0, -4.0], max(1, (order + 1) // 2))
-    for _ in range(bend.waves - 1 + turn % 2):
-        shape = polynomial.polymul(shape, [1.0, -2.0])
-    for k in range(order + 1):
+    for k, shape in enumerate(_shapes(len(rows) - 1, bend.waves - 1 + turn % 2)):
         rows[k] = rows[k] + bend.size * size * polynomial.polyval(fraction, shape) / span**k
-        shape = polynomial.polyder(shape)
+
+
+@lru_cache
+def _shapes(order: int, nodes: int) -> list[Array]:
+    """A polynomial on 0 to 1 that is flat at both ends and has so many zeros between, and its derivatives."""
+    shape = polynomial.polypow([0.0, 4.0, -4.0], max(1, (order + 1) // 2))
+    for _ in range(nodes):
+        shape = polynomial.polymul(shape, [1.0, -2.0])
+    return [np.asarray(polynomial.polyder(shape, k)) for k in range(order + 1)]
 
 
 def _vary(

@@ -46,7 +46,7 @@ class Mapped:
         for own, given in zip(self._inputs, arguments, strict=True):
             own[: self._count] = given
             own[self._count :] = own[0]
-        views: list[Any] = [memoryview(own) for own in (*self._inputs, result)]
+        views = [memoryview(own) for own in (*self._inputs, result)]  # type: ignore[arg-type]
         for start in range(0, self._padded, self._step):
             *inputs, made = (view[start : start + self._step] for view in views)
             for k, view in enumerate(inputs):

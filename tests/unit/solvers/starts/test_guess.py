@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 
 from solvers.starts.guess import guesses
-from solvers.starts.sketch import Bend, _slopes, sketch
+from solvers.starts.sketch import Bend, Sketch, _slopes
 from solvers.transcription.layout import layout
 from solvers.transcription.mesh import uniform
 from tests.unit.solvers.problems import LEAST_TIME, compiled, shape, stated
@@ -98,7 +98,7 @@ def test_a_bend_keeps_what_is_known_at_the_ends():
     functions = compiled(shape(functional={"integrand": "y''^2"}, endpoints=["y(0) = 2", "y'(0) = 0", "y(3) = 2"]))
     mesh = uniform(1, 4, 4)
     where = layout(functions, mesh)
-    z = sketch(functions, mesh, where, np.array([0.0, 3.0]), np.zeros(0), Bend(0.3))
+    z = Sketch(functions, mesh, where, np.array([0.0, 3.0]), np.zeros(0)).bent(Bend(0.3))
     assert z[where.nodes[[0, -1], 0]] == pytest.approx([2, 2])
     assert z[where.nodes[:, 0]].max() == pytest.approx(2 * 1.3)
 
