@@ -6,6 +6,7 @@ import heapq
 import itertools
 import logging
 import threading
+import time
 from functools import partial
 
 from service.engine.records import Capacity, Ending, Job, Outcome, Sink
@@ -14,6 +15,7 @@ from service.engine.slot import Slot
 _log = logging.getLogger(__name__)
 
 _CLOSED = Outcome(Ending.CLOSED, reason="the server was closed")
+_YIELD_SECONDS = 1e-4  # who submits has more to do, but the slot's thread shall have the interpreter first
 _IDLE_SECONDS = 1.0  # how often a slot without a job looks after its child
 
 
@@ -51,12 +53,16 @@ class LocalEngine:
 
     def submit(self, job: Job) -> None:
         """Queue a job; after `close` it ends as CLOSED at once."""
+        accepted = False
         with self._changed:
             if not self._closing:
                 heapq.heappush(self._queue, (-job.priority, job.created, next(self._order), job))
                 self._changed.notify()
-                return
-        self._sink.ended(job, _CLOSED)
+                accepted = True
+        if accepted:
+            time.sleep(_YIELD_SECONDS)
+        else:
+            self._sink.ended(job, _CLOSED)
 
     def cancel(self, id: str) -> bool:
         """Stop a job, queued or running; False where there is none of that name."""

@@ -34,7 +34,8 @@ def known_run(id: str, services: TheServices) -> Run:
 TheRun = Annotated[Run, Depends(known_run)]
 
 
-async def _json_body(request: Request, services: TheServices) -> bytes:
+async def _json_body(request: Request) -> bytes:
+    services = await _services(request)  # no dependency: each one takes a while
     return await read_body(request, JSON, services.settings.body_bytes)
 
 
