@@ -10,6 +10,7 @@ import difflib
 from collections.abc import Iterable
 from dataclasses import dataclass
 from enum import Enum
+from functools import lru_cache
 from itertools import islice
 
 
@@ -60,6 +61,7 @@ def refuse(stage: Stage, complaints: Iterable[Complaint]) -> None:
         raise Refused(stage, found)
 
 
+@lru_cache(maxsize=4096)
 def pointer(*steps: str | int) -> str:
     """The JSON pointer of these steps: `pointer("where", "a/b")` is "/where/a~1b"."""
     return "".join("/" + str(step).replace("~", "~0").replace("/", "~1") for step in steps)

@@ -20,7 +20,7 @@ _NO_NUMBER = re.compile(r"-?(NaN|Infinity|inf)\b")
 
 
 class _Members(dict[str, Any]):
-    """An object that remembers which names came more than once."""
+    """An object in which some names came more than once."""
 
     repeated: tuple[str, ...] = ()
 
@@ -36,7 +36,8 @@ def parse(body: bytes) -> Any:
     except ValueError as error:
         raise _unreadable(text, str(error)) from None
     refuse(Stage.JSON, _repetitions(text))
-    refuse(Stage.JSON, _excesses(value))
+    if not _moderate(value):
+        refuse(Stage.JSON, _excesses(value))
     return value
 
 
@@ -73,21 +74,36 @@ def _too_deep(place: str) -> Refused:
     return Refused(Stage.JSON, [Complaint(place, None, "too-deep", message, "A problem document needs five levels.")])
 
 
-def _pairs(pairs: list[tuple[str, Any]]) -> _Members:
-    members = _Members(pairs)
-    if len(members) < len(pairs):
-        names = [name for name, _ in pairs]
-        members.repeated = tuple(name for name in members if names.count(name) > 1)
-    return members
-
-
 def _repetitions(text: str) -> Iterator[Complaint]:
     """Names that an object has twice; the fast parser keeps the last one silently."""
-    tree = json.loads(text, object_pairs_hook=_pairs, parse_int=str, parse_float=str)
-    for place, value in _walk(tree):
+    some = False
+
+    def members_of(pairs: list[tuple[str, Any]]) -> dict[str, Any]:
+        nonlocal some
+        members = dict(pairs)
+        if len(members) == len(pairs):
+            return members
+        some, members = True, _Members(pairs)
+        names = [name for name, _ in pairs]
+        members.repeated = tuple(name for name in members if names.count(name) > 1)
+        return members
+
+    tree = json.loads(text, object_pairs_hook=members_of, parse_int=str, parse_float=str)
+    for place, value in _walk(tree) if some else ():
         for name in value.repeated if isinstance(value, _Members) else ():
             message = f"The name {json.dumps(name, ensure_ascii=False)} is there more than once."
             yield Complaint(place + pointer(name), None, "repeated-name", message, "Keep one of them.")
+
+
+def _moderate(value: Any) -> bool:
+    """Whether `_excesses` finds nothing, without saying where."""
+    level = [value]
+    for _ in range(DEEPEST):
+        if not all(map(_is_double, (part for part in level if isinstance(part, int | float)))):
+            return False
+        inner = [part.values() if isinstance(part, dict) else part for part in level if isinstance(part, dict | list)]
+        level = [part for parts in inner for part in parts]
+    return not level
 
 
 def _excesses(value: Any) -> Iterator[Complaint]:
