@@ -5,6 +5,7 @@ A request that needs it earlier loads it, and waits so long.
 
 from __future__ import annotations
 
+import gc
 from importlib import import_module
 from threading import Timer
 
@@ -15,6 +16,12 @@ SECONDS = 1.0
 
 def load() -> None:
     """Begin to load in a while, and do not wait."""
-    timer = Timer(SECONDS, lambda: [import_module(name) for name in MODULES])
+    timer = Timer(SECONDS, _load)
     timer.daemon = True
     timer.start()
+
+
+def _load() -> None:
+    for name in MODULES:
+        import_module(name)
+    gc.freeze()  # what is loaded now stays: the collector shall not look through it in the middle of an answer
