@@ -193,9 +193,11 @@ def _refuse(refused: Refused, body: bytes) -> None:
 
 def _solved(body: bytes) -> dict[str, Any]:
     """Read, solve and archive in this process; Ctrl-C stops with the best curve so far."""
+    from service.memory import keep_freed
     from service.spec import read
     from service.terminal import interruptible, progress_bar
 
+    keep_freed()
     with _refusals(body):
         tolerance = read(body).solve.tolerance
         with interruptible() as stop, progress_bar(tolerance) as report:

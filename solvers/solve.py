@@ -40,7 +40,8 @@ from solvers.search.structure import present_switches
 from solvers.solution import BranchPoint, Change, Check, Price, Progress, Slope, Solution, SwitchPlace, Verdict, Watch
 from solvers.starts.extremals import solve_from_starts
 from solvers.starts.guess import guesses
-from solvers.sweep import Found, Tools, sweep
+from solvers.sweep.found import Found, Tools
+from solvers.sweep.points import sweep
 from solvers.tables.usage import table_notes
 from solvers.transcription.evaluation import point_outputs
 from solvers.transcription.functions import compile_problem
@@ -150,7 +151,7 @@ def _with_sweep(
     """The solution with the points of the sweep."""
     began = time.perf_counter()
     tools = Tools(
-        alone=lambda other: _found(other, None, deadline),
+        alone=lambda other, room: _found(other, None, room),
         judge=lambda other, at, drawn, known: _solution(
             other, at, time.perf_counter(), brief=True, drawn=drawn, known=known
         ),
@@ -300,7 +301,7 @@ def _solution(
             value, value_error_or_none = root, value_error * factor if value_error_or_none is not None else None
     kept = {name: functions for name, functions in shape.functions.items() if not name.startswith(SLACK + " ")}
     fitted = None if brief else fit(path)
-    notes = (*_notes(problem, pursuit, gauged), *([left_out] if left_out else []))
+    notes = () if brief else (*_notes(problem, pursuit, gauged), *([left_out] if left_out else []))
     switches = _switches(pursuit, gauged)
     return Solution(
         verdict=verdict,

@@ -31,6 +31,7 @@ from collections.abc import Callable, Mapping
 from typing import Any
 
 from service.engine.frames import Unpacker, pack
+from service.memory import give_back, keep_freed
 
 Report = Callable[[dict[str, Any]], None]
 Stop = Callable[[], bool]
@@ -98,20 +99,13 @@ def _load(name: str) -> Function:
     return loaded
 
 
-def _give_back_memory() -> None:
-    gc.collect()
-    trim = getattr(ctypes.CDLL(None), "malloc_trim", None)  # GNU libc only
-    if trim is not None:
-        trim(0)
-
-
 def _serve(line: _Line, function: Function) -> None:
     tidy = True
     while True:
         try:
             request, body = line.jobs.get(timeout=None if tidy else _IDLE_SECONDS)
         except queue.Empty:
-            _give_back_memory()
+            give_back()
             tidy = True
             continue
         tidy = False
@@ -146,6 +140,7 @@ def main() -> None:
     function = _load(given.job)
     sys.setswitchinterval(_SWITCH_SECONDS)
     _protect_the_machine(given.address_space)
+    keep_freed()
     gc.freeze()
     gc.enable()
     line.send({"kind": "ready"})

@@ -93,15 +93,19 @@ class Response:
 
     def to(self, index: int, shift: Shift) -> Array:
         """The change (SI) of all variables per unit of the constant with this index, whose limits shift like this."""
-        program = self.path.program
-        size = abs(program.compiled.constants[index]) or 1.0
-        found = self._checked(-self.push(index, shift), NOTHING / size)
-        change = self._carried(shift)
-        change[self.free] = found[: len(self.free)]
-        change = change * program.scale
-        fixed = program.layout.places[~np.isin(program.layout.places, self.free)]
+        change = self.along(index, shift)[0] * self.path.program.scale
+        places = self.path.program.layout.places
+        fixed = places[~np.isin(places, self.free)]
         change[fixed] = shift.lower[fixed]
         return np.asarray(change)
+
+    def along(self, index: int, shift: Shift) -> tuple[Array, Array]:
+        """The change of all variables but given places, and of the multipliers of all rows, per unit (both scaled)."""
+        size = abs(self.path.program.compiled.constants[index]) or 1.0
+        found = self._checked(-self.push(index, shift), NOTHING / size)
+        change, rows = self._carried(shift), np.zeros(self.path.program.rows.count)
+        change[self.free], rows[self.active] = found[: len(self.free)], found[len(self.free) :]
+        return change, rows
 
     def push(self, index: int, shift: Shift) -> Array:
         """What one unit of the constant does to the system's left side, the free variables held (scaled)."""

@@ -9,7 +9,15 @@ from solvers.problem import Problem
 from solvers.search.chatter import one_more
 from solvers.search.pursuit import go_on, pursue
 from solvers.search.record import End, Pursuit
-from solvers.search.structure import SWITCH, held_rightly, present_switches, signals, softened, switches, with_switches
+from solvers.search.structure import (
+    at_the_edge,
+    held_rightly,
+    present_switches,
+    signals,
+    softened,
+    switches,
+    with_switches,
+)
 from solvers.solution import Watch
 from solvers.transcription.collocation import Family
 from solvers.transcription.functions import linear_controls
@@ -33,14 +41,14 @@ def sharpen(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit |
         return None
     found = []
     for seen in _calmed(base, watch, deadline):
-        sharp = _with_structure(base, seen, watch, deadline)
+        sharp = with_structure(base, seen, watch, deadline)
         if sharp is not None and sharp.end is End.CONVERGED:
             return sharp
         if sharp is not None:
             found.append(sharp)
     for sharp in sorted(found, key=lambda pursuit: pursuit.value_error)[:1]:
         for _ in range(ROUNDS):
-            again = _with_structure(base, sharp.paths[-1], watch, deadline)
+            again = with_structure(base, sharp.paths[-1], watch, deadline)
             if again is None or again.value_error > sharp.value_error:
                 break
             sharp = again
@@ -63,7 +71,7 @@ def _calmed(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Iterator[
             yield calm.paths[-1]
 
 
-def _with_structure(base: Pursuit, path: Trajectory, watch: Watch | None, deadline: Deadline) -> Pursuit | None:
+def with_structure(base: Pursuit, path: Trajectory, watch: Watch | None, deadline: Deadline) -> Pursuit | None:
     """Read switches off a path and solve with them; None where there are none or the answer is not believable.
 
     A switch that ends at the edge of the room it was given is looked at again from there.
@@ -78,7 +86,7 @@ def _with_structure(base: Pursuit, path: Trajectory, watch: Watch | None, deadli
         if not pursuit.solved:
             return None
         path = pursuit.paths[-1]
-        if not _at_the_edge(path):
+        if not at_the_edge(path):
             if not _agrees(pursuit, base) or not held_rightly(path):
                 return None
             return pursuit if pursuit.end is End.CONVERGED else go_on(pursuit, watch, deadline, 4)
@@ -99,21 +107,12 @@ def _with_more_switches(base: Pursuit, sharp: Pursuit, watch: Watch | None, dead
         if changed is None:
             break
         pursuit = pursue(changed, watch, deadline, meshes=2, start=path, mesh=_mesh(changed))
-        if not pursuit.solved or _at_the_edge(pursuit.paths[-1]) or not _agrees(pursuit, base):
+        if not pursuit.solved or at_the_edge(pursuit.paths[-1]) or not _agrees(pursuit, base):
             break
         if pursuit.value_error > error:
             break
         last, error = pursuit, pursuit.value_error
     return last if last.shown or last.value_error <= sharp.value_error else sharp
-
-
-def _at_the_edge(path: Trajectory) -> bool:
-    """Whether any switch has run into a neighbour's room."""
-    return any(
-        parameter.name.startswith(SWITCH + " ")
-        and min(value - parameter.lower, parameter.upper - value) < 1e-4 * (parameter.upper - parameter.lower)
-        for parameter, value in zip(path.program.compiled.lowered.problem.parameters, path.parameters, strict=True)
-    )
 
 
 def _mesh(problem: Problem) -> Mesh:

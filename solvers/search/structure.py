@@ -276,6 +276,15 @@ def present_switches(path: Trajectory) -> list[Switch]:
     return found
 
 
+def at_the_edge(path: Trajectory) -> bool:
+    """Whether any switch has run into a neighbour's room."""
+    return any(
+        parameter.name.startswith(SWITCH + " ")
+        and min(value - parameter.lower, parameter.upper - value) < 1e-4 * (parameter.upper - parameter.lower)
+        for parameter, value in zip(path.program.compiled.lowered.problem.parameters, path.parameters, strict=True)
+    )
+
+
 def _on(held: tuple[Held, ...], stretch: int) -> set[tuple[str, int, int]]:
     return {(h.name, h.order, h.side) for h in held if h.stretch == stretch}
 

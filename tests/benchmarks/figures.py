@@ -25,6 +25,7 @@ os.environ.update(ONE_THREAD)
 
 from service import samples
 from service.assemble import assemble
+from service.memory import keep_freed
 from service.spec import read
 from solvers.minimise.ipopt import Iterate, Minimum, Start, minimise
 from solvers.search import pursuit
@@ -177,6 +178,7 @@ def growth(name: str = "C16a", counts: tuple[int, ...] = (30, 300, 3000)) -> Ite
 
 def on_mesh(name: str, count: int) -> Size:
     """A few iterations on one uniform mesh."""
+    keep_freed()
     compiled = compile_problem(lower(assemble(read(text(name)))))
     program, start = from_first_guess(compiled, uniform(1, 8, 4))
     minimise(program, start)

@@ -5,6 +5,7 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
+from solvers import solve as single
 from solvers.problem import Sweep
 from solvers.solution import Verdict
 from solvers.solve import solve
@@ -108,3 +109,40 @@ def test_without_time_no_point_is_made_up():
     points = solve(replace(problem, options=replace(problem.options, time_limit=1e-3))).sweep
     assert [point.value for point in points] == [None, None]
     assert points[0].note == "The time limit was reached before this point."
+
+
+def test_where_a_limit_begins_to_bind_the_structure_is_repaired_near_the_neighbour(monkeypatch):
+    # From the speed 0.3 to rest over D with |u| <= 1, v <= 1.2 (common practice of motion control): with the greatest
+    # speed p = sqrt(D + 0.045) in the time 2 p - 0.3 up to p = 1.2; beyond, the rest of the way at that speed.
+    problem = stated(
+        **LEAST_TIME
+        | {
+            "constants": {"D": 1.25},
+            "endpoints": ["x(0) = 0", "x'(0) = 0.3", "x(T) = D", "x'(T) = 0"],
+            "constraints": ["x' <= 1.2"],
+        }
+    )
+    from_nothing = []
+    found = single._found
+    monkeypatch.setattr(single, "_found", lambda *given: from_nothing.append(given) or found(*given))
+    points = solve(swept(problem, D=[1.2, 1.3, 1.45, 1.6, 1.7])).sweep
+    for point in points:
+        fastest = min(np.sqrt(point.at[0] + 0.045), 1.2)
+        expected = 2 * fastest - 0.3 + (point.at[0] + 0.045 - fastest**2) / fastest
+        assert abs(point.value - expected) <= point.value_error
+        assert point.verdict is Verdict.LOCAL_MINIMUM, point.failed
+    assert len(from_nothing) <= 2  # the problem as it stands, and perhaps a point just beyond the change
+
+
+def test_a_square_is_minimised_only_where_the_integrand_is_positive():
+    # The integral of (c + y) ds has a least value while c + y > 0; where it is negative, a longer curve is less.
+    problem = shape(
+        independent={"name": "x", "from": 0, "to": 1},
+        constants={"c": 1.0},
+        unknowns={"y": {"within": [0, 2]}},
+        functional={"integrand": "(c + y)*sqrt(1 + y'^2)"},
+        endpoints=["y(0) = 1", "y(1) = 1"],
+    )
+    points = solve(swept(replace(problem, options=replace(problem.options, time_limit=20.0)), c=[-3.5, 0.5, 1.0])).sweep
+    good = {Verdict.LOCAL_MINIMUM, Verdict.GLOBAL_MINIMUM}
+    assert [point.verdict in good for point in points] == [False, True, True]
