@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 import math
 
 import numpy as np
@@ -171,6 +172,22 @@ def test_extremes_are_found_between_the_nodes_and_on_both_sides_of_a_jump(hose, 
     assert (lines["y"].largest, lines["y"].highest_at) == (pytest.approx(2.4), 3.0)
     jump = {line.name: line for line in extremes(stage)}["a"]
     assert (jump.lowest, jump.highest) == (pytest.approx(-2000), pytest.approx(2000))
+
+
+def test_derivatives_that_are_zero_are_told_as_zero(stage):
+    """Along arcs of constant acceleration rounding leaves something of the next derivative, but that is no figure."""
+    spoiled = json.loads(json.dumps(stage))
+    for piece in spoiled["curve"]["arcs"][0]["functions"]["a"]:
+        piece[1:] = [1e-11, -2e-11]
+    spoiled["curve"]["error"] = 1e-13
+    lines = {line.name: line for line in extremes(spoiled)}
+    assert (lines["a'"].lowest, lines["a'"].highest, lines["a'"].unit) == (0.0, 0.0, "mm/s^3")
+    assert "a''" not in lines
+    assert lines["x"].lowest == 0.0
+    for piece in spoiled["curve"]["arcs"][0]["functions"]["a"]:
+        piece[1:] = [10.0, -20.0]  # an acceleration that does change
+    lines = {line.name: line for line in extremes(spoiled)}
+    assert lines["a'"].largest > 100 and "a''" in lines
 
 
 def test_observations_are_a_table_of_their_own(fitted):
