@@ -1,85 +1,90 @@
-"""`abs` and `max` in the integrand written exactly, where that is possible: by an unknown that bounds them from above.
+"""`abs`, `max` and `min` in the integrand written exactly, where that is possible: by an unknown that bounds them.
 
 The integral of |u| is least together with the integral of s over all s with s >= u and s >= -u.  That holds for terms
-that are added with a positive weight to what is minimised (or subtracted from what is maximised); elsewhere such
-functions are rounded instead.
+that are to be small: added to what is minimised with a positive weight, or subtracted from what is maximised.  Where a
+term is to be large, the same holds for min(a, b) with s <= a and s <= b.  Elsewhere such functions are rounded.
 """
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Mapping
 from dataclasses import replace
 
-from solvers.formula.nodes import Call, Name, Node, Number, Product, Sum, walk
+from solvers.formula.nodes import Call, Name, Negative, Node, Number, Product, Sum, walk
 from solvers.observations import terminal
 from solvers.problem import Condition, Problem, Seek, Unknown
+from solvers.transcription.functions import ROUNDED
 
 SLACK = "slack"
 """What the names of the added unknowns begin with; a blank follows, so that no user can write one."""
 
-ROUNDED = {"abs", "min", "max", "sign"}
-
 
 def with_slacks(problem: Problem) -> Problem:
-    """The problem with its positive terms of `abs` and `max` in slack form; the same problem where there are none."""
+    """The problem with such terms of its integrand in slack form; the same problem where there are none."""
     if problem.integrand is None or problem.seek is Seek.STATIONARY:
         return problem
-    values = {c.name: c.value for c in problem.constants}
-    integrand = problem.integrand
-    terms = integrand.terms if isinstance(integrand, Sum) else (integrand,)
-    minus = integrand.minus if isinstance(integrand, Sum) else (False,)
-    wanted = problem.seek is Seek.MAXIMUM  # the sign with which a term has to stand
-    unknowns, constraints, changed = list(problem.unknowns), list(problem.constraints), []
-    for term, negative in zip(terms, minus, strict=True):
-        kink = _kink(term, values) if negative is wanted else None
-        if kink is None:
-            changed.append(term)
-            continue
-        slack = Name(f"{SLACK} {len(unknowns) - len(problem.unknowns) + 1}")
-        unknowns.append(Unknown(slack.name, 0))
-        constraints += _above(slack, kink)
-        changed.append(_replaced(term, kink, slack))
-    if len(unknowns) == len(problem.unknowns):
+    slacks = _Slacks({c.name: c.value for c in problem.constants})
+    integrand = slacks.exact(problem.integrand, problem.seek is Seek.MINIMUM)
+    if not slacks.unknowns:
         return problem
-    whole = Sum(tuple(changed), minus) if isinstance(integrand, Sum) else changed[0]
-    return replace(problem, integrand=whole, unknowns=tuple(unknowns), constraints=tuple(constraints))
+    unknowns, constraints = (*problem.unknowns, *slacks.unknowns), (*problem.constraints, *slacks.constraints)
+    return replace(problem, integrand=integrand, unknowns=unknowns, constraints=constraints)
 
 
-def _kink(term: Node, values: dict[str, float]) -> Call | None:
-    """The one `abs` or `max` of a term whose other factors are positive numbers."""
-    if isinstance(term, Call):
-        return term if term.function in ("abs", "max") else None
-    if not isinstance(term, Product):
+class _Slacks:
+    """The unknowns and constraints that stand for functions with kinks."""
+
+    def __init__(self, constants: Mapping[str, float]) -> None:
+        self.unknowns: list[Unknown] = []
+        self.constraints: list[Condition] = []
+        self._constants = constants
+
+    def exact(self, tree: Node, least: bool) -> Node:
+        """A part of the integrand with its kinks replaced; `least` says that what it is worth is to be small."""
+        match tree:
+            case Call(function="abs" | "max") if least:
+                return self._slack(tree, above=True)
+            case Call(function="min") if not least:
+                return self._slack(tree, above=False)
+            case Negative(operand=operand):
+                return replace(tree, operand=self.exact(operand, not least))
+            case Sum(terms=terms, minus=minus):
+                parts = (self.exact(term, least is not negative) for term, negative in zip(terms, minus, strict=True))
+                return replace(tree, terms=tuple(parts))
+            case Product(factors=factors, over=over):
+                given = [self._given(factor) for factor in factors]
+                others = [k for k, value in enumerate(given) if value is None]
+                if len(others) == 1 and not over[others[0]] and 0.0 not in given:
+                    turned = sum(value < 0 for value in given if value is not None) % 2 == 1
+                    part = self.exact(factors[others[0]], least is not turned)
+                    return replace(tree, factors=(*factors[: others[0]], part, *factors[others[0] + 1 :]))
+        return tree
+
+    def _given(self, factor: Node) -> float | None:
+        """The value of a factor that is a number, a constant or the opposite of one."""
+        match factor:
+            case Number(value=value):
+                return value
+            case Name(name=name):
+                return self._constants.get(name)
+            case Negative(operand=operand):
+                value = self._given(operand)
+                return None if value is None else -value
         return None
-    kinks = [factor for factor, over in zip(term.factors, term.over, strict=True) if _kink_alone(factor) and not over]
-    others = [factor for factor in term.factors if not _kink_alone(factor)]
-    positive = all(
-        (isinstance(factor, Number) and factor.value > 0)
-        or (isinstance(factor, Name) and values.get(factor.name, 0.0) > 0)
-        for factor in others
-    )
-    kink = kinks[0] if len(kinks) == 1 and len(others) == len(term.factors) - 1 and positive else None
-    return kink if isinstance(kink, Call) else None
 
-
-def _kink_alone(factor: Node) -> bool:
-    return isinstance(factor, Call) and factor.function in ("abs", "max")
-
-
-def _above(slack: Name, kink: Call) -> Iterator[Condition]:
-    """The slack is not below any branch."""
-    zero = Number(0.0, "0")
-    branches = [(argument, True) for argument in kink.arguments]
-    if kink.function == "abs":
-        branches.append((kink.arguments[0], False))
-    for argument, subtracted in branches:
-        yield Condition(Sum((slack, argument), (False, subtracted)), zero, None, f"{kink.function} from above", "")
-
-
-def _replaced(term: Node, kink: Call, slack: Name) -> Node:
-    if term is kink or not isinstance(term, Product):
+    def _slack(self, kink: Call, above: bool) -> Name:
+        """The unknown that is nowhere below, or nowhere above, any branch of a kink."""
+        slack = Name(f"{SLACK} {len(self.unknowns) + 1}")
+        self.unknowns.append(Unknown(slack.name, 0))
+        branches = [(argument, True) for argument in kink.arguments]
+        if kink.function == "abs":
+            branches.append((kink.arguments[0], False))
+        zero = Number(0.0, "0")
+        limits, side = ((zero, None), "above") if above else ((None, zero), "below")
+        for argument, subtracted in branches:
+            body = Sum((slack, argument), (False, subtracted))
+            self.constraints.append(Condition(body, *limits, f"{kink.function} from {side}", ""))
         return slack
-    return replace(term, factors=tuple(slack if factor is kink else factor for factor in term.factors))
 
 
 def rounded_functions(problem: Problem) -> set[str]:

@@ -15,7 +15,7 @@ import casadi as ca
 import numpy as np
 
 from solvers.formula.evaluate import evaluate
-from solvers.formula.nodes import At, Call, Name, Node, Number, Sum, children, with_children
+from solvers.formula.nodes import At, Call, Name, Node, Number, Sum, children, walk, with_children
 from solvers.formula.printer import text
 from solvers.observations import terminal
 from solvers.problem import Condition, Place, Problem
@@ -36,6 +36,19 @@ def _least(*values: ca.SX) -> ca.SX:
     for value in values[1:]:
         least = (least + value - _smooth_abs(least - value)) / 2
     return least
+
+
+ROUNDED = frozenset({"abs", "min", "max", "sign"})
+"""The functions with kinks, which are rounded."""
+
+
+def rounds(problem: Problem) -> bool:
+    """Whether any formula of a problem without arcs holds a function that is rounded."""
+    trees = [tree for tree in (problem.integrand, problem.endpoint) if tree is not None]
+    trees += [tree for _, tree in problem.where] + [c.body for c in problem.conditions]
+    trees += [side for equation in problem.dynamics for side in (equation.left, equation.right)]
+    trees += [observation.body for observation in problem.observations]
+    return any(isinstance(node, Call) and node.function in ROUNDED for tree in trees for node in walk(tree))
 
 
 OPERATIONS: dict[str, Callable[..., ca.SX]] = {
