@@ -27,8 +27,9 @@ from solvers.forms.broken import with_corner
 from solvers.forms.gauge import Gauged, in_parametric_form
 from solvers.forms.graph import as_graph, checks_on_graph, prices_of_original, uprights
 from solvers.forms.rejoin import rejoin
-from solvers.forms.signs import never_negative, positive, positive_along
+from solvers.forms.signs import better_below, one_signed, positive, positive_along
 from solvers.forms.slack import SLACK, rounded_functions, with_slacks
+from solvers.forms.steepness import steep_slopes
 from solvers.minimise.ipopt import FLOOR
 from solvers.problem import Continuation, Problem, Seek
 from solvers.search.attempt import first_mesh
@@ -36,7 +37,7 @@ from solvers.search.chatter import chatter
 from solvers.search.pursuit import go_on, pursue
 from solvers.search.record import End, Pursuit
 from solvers.search.sharpen import sharpen
-from solvers.search.structure import present_switches
+from solvers.search.structure import jumps_at_breaks, present_switches
 from solvers.solution import BranchPoint, Change, Check, Price, Progress, Slope, Solution, SwitchPlace, Verdict, Watch
 from solvers.starts.extremals import solve_from_starts
 from solvers.starts.guess import guesses
@@ -47,6 +48,7 @@ from solvers.transcription.evaluation import point_outputs
 from solvers.transcription.functions import compile_problem
 from solvers.transcription.layout import layout
 from solvers.transcription.lowering import lower, primed
+from solvers.transcription.natural import at_natural_sizes
 from solvers.transcription.scaling import find_scales
 from solvers.transcription.trajectory import Trajectory, costate_curve, curve
 from solvers.verdict import judge
@@ -135,8 +137,7 @@ def _with_branch(
         return watch is not None and watch(sign)
 
     def value(found_value: float) -> float:
-        squared = found.gauged is not None and found.gauged.squared
-        return float(np.sqrt(found_value)) if squared else found_value
+        return found_value if found.gauged is None else found.gauged.value(found_value)
 
     path = unambiguous(found.pursuit.paths[-1])
     branch = follow(path, continuation.constant, continuation.to, deadline, stop)
@@ -156,9 +157,7 @@ def _with_sweep(
             other, at, time.perf_counter(), brief=True, drawn=drawn, known=known
         ),
         fits=lambda other, at: (
-            at.gauged is None
-            or not at.gauged.squared
-            or _rightly_squared(at.gauged, at.pursuit, not never_negative(other))
+            at.gauged is None or not at.gauged.squared or _rightly_squared(at.gauged, at.pursuit, not one_signed(other))
         ),
     )
     points = sweep(problem, found, tools, watch, deadline)
@@ -176,8 +175,8 @@ def _found(problem: Problem, watch: Watch | None, deadline: Deadline) -> Found:
         gauged = in_parametric_form(problem, lambda: look()[0], squared)
         if gauged is None or (squared and not gauged.squared):
             continue
-        doubtful = squared and not never_negative(problem)
-        if doubtful and not positive(look()[1]):
+        doubtful = squared and not one_signed(problem)
+        if doubtful and not positive(better_below(problem) * look()[1]):
             continue
         room = deadline.within(DOUBTFUL * deadline.left) if doubtful else deadline
         pursuit = _in_given_form(with_slacks(gauged.problem), watch, room)
@@ -197,19 +196,28 @@ def _in_given_form(problem: Problem, watch: Watch | None, deadline: Deadline) ->
     pursuit = pursue(problem, watch, deadline, meshes=3)
     if pursuit.solved and (pursuit.steps[-1].error or 0.0) <= NEARLY * problem.options.tolerance:
         pursuit = pursuit if pursuit.end is End.CONVERGED else go_on(pursuit, watch, deadline, 3)
+    if pursuit.end is End.CONVERGED and jumps_at_breaks(pursuit.paths[-1]):  # their multipliers are not the only ones
+        sharp = sharpen(pursuit, watch, deadline.within(PATIENCE * (time.process_time() - began)))
+        return pursuit if sharp is None or sharp.end is not End.CONVERGED else _after(pursuit, sharp)
     if not pursuit.solved or pursuit.end in (End.CONVERGED, End.STOPPED, End.TIME, End.TORN):
         return pursuit
     room = min(SHARE * deadline.left, PATIENCE * (time.process_time() - began) + 1.0)
     sharp = sharpen(pursuit, watch, deadline.within(room))
     if sharp is not None:
-        sharp.steps[:0] = pursuit.steps
-        sharp.iterations += pursuit.iterations
+        sharp = _after(pursuit, sharp)
         if sharp.end is End.TIME and not deadline.over and sharp.value_met_before:
             sharp.end = End.SETTLED  # the room for this search was over, not the time of the run
         if sharp.end is End.CONVERGED or (sharp.end is End.SETTLED and sharp.shown):
             return sharp
     plain = go_on(pursuit, watch, deadline)
     return plain if sharp is None or _nearer(plain, sharp) else sharp
+
+
+def _after(plain: Pursuit, sharp: Pursuit) -> Pursuit:
+    """The pursuit with switches, its record with that of the plain meshes before it."""
+    sharp.steps[:0] = plain.steps
+    sharp.iterations += plain.iterations
+    return sharp
 
 
 def _nearer(plain: Pursuit, sharp: Pursuit) -> bool:
@@ -228,19 +236,22 @@ def _rightly_squared(gauged: Gauged, pursuit: Pursuit, doubtful: bool) -> bool:
 
 
 def _first_look(problem: Problem) -> tuple[dict[str, float], Array]:
-    """Typical sizes of the independent variable and the unknowns (the same one where they are of like size), and the
-    integrand along the first guess."""
+    """Typical sizes of the independent variable and the unknowns, the same one where they are of one kind or of like
+    size, and the integrand along the first guess."""
     compiled = compile_problem(lower(problem))
     mesh = first_mesh(len(problem.places) - 1)
     where = layout(compiled, mesh)
     z = guesses(compiled, mesh, where)[0].z
     span = float(np.ptp(z[where.places])) or 1.0
-    sizes = find_scales(compiled, where, z).states
+    scales = find_scales(compiled, where, at_natural_sizes(compiled, mesh, where, z))
+    steep = steep_slopes(compiled, where, z, scales.controls)
     found = {
-        name: float(size) for (name, order), size in zip(compiled.lowered.states, sizes, strict=True) if order == 0
+        name: float(size)
+        for (name, order), size in zip(compiled.lowered.states, scales.states, strict=True)
+        if order == 0
     }
     sizes_by_name = {problem.independent: span} | {
-        n: span if span / 30 < s < span * 30 else s for n, s in found.items()
+        n: span * steep[n] if n in steep else span if span / 30 < s < span * 30 else s for n, s in found.items()
     }
     return sizes_by_name, point_outputs(compiled, where, z)[:, -1]
 
@@ -288,8 +299,7 @@ def _solution(
         depends = () if verdict in NO_OPTIMUM_FOUND else slopes(path)
         altered, left_out = _changes(path, depends)
     if gauged is not None:
-        root = float(np.sqrt(value)) if gauged.squared else 1.0
-        factor = 1 / (2 * root) if gauged.squared else 1.0
+        factor = gauged.slope(value)
         anew = tuple(check for check in made if check.name not in known)  # those taken over are told already
         told = {check.name: check for check in checks_on_graph(gauged, shape, anew)}
         made = tuple(told.get(check.name, check) for check in made)
@@ -297,8 +307,10 @@ def _solution(
         depends = tuple(replace(slope, slope=factor * slope.slope) for slope in depends)
         if drawn:
             shape, multipliers, altered = as_graph(gauged, shape, multipliers, factor, altered)
-        if gauged.squared:
-            value, value_error_or_none = root, value_error * factor if value_error_or_none is not None else None
+        value, value_error_or_none = (
+            gauged.value(value),
+            None if value_error_or_none is None else abs(factor) * value_error,
+        )
     kept = {name: functions for name, functions in shape.functions.items() if not name.startswith(SLACK + " ")}
     fitted = None if brief else fit(path)
     notes = () if brief else (*_notes(problem, pursuit, gauged), *([left_out] if left_out else []))
@@ -374,7 +386,7 @@ def _notes(problem: Problem, pursuit: Pursuit, gauged: Gauged | None) -> list[st
         speed = "in which the cost grows evenly" if gauged.squared else "at constant speed"
         notes.append(f"The integrand grows linearly with the slope: the curve was found in parametric form, {speed}.")
     if len(pursuit.problem.unknowns) > len(problem.unknowns) and gauged is None:
-        notes.append("abs and max in the integrand were written exactly, with auxiliary unknowns that bound them.")
+        notes.append("abs, max or min in the integrand: written exactly, with auxiliary unknowns that bound them.")
     rounded = sorted(rounded_functions(pursuit.problem))
     if rounded:
         notes.append(f"{', '.join(rounded)} in the formulas: rounded over a width of 1e-9, so that derivatives exist.")

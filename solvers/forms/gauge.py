@@ -6,7 +6,8 @@ y(s) the integral is the same for every parametrisation, and one may choose the 
 
 * where nothing but the integral is minimised, its square is minimised instead: by the inequality of Cauchy and Schwarz
   the least integral of f^2 over s from 0 to 1 is the square of the least integral of f, at constant f.  The curve comes
-  out in its own cost as parameter, in which even 1/sqrt(y) at y = 0 is smooth;
+  out in its own cost as parameter, in which even 1/sqrt(y) at y = 0 is smooth (the greatest integral of an f that is
+  not positive is minus the least one of -f);
 * else the speed (x'/X)^2 + (y'/Y)^2 is held constant by an equality.
 
 References: Bliss (1946), Lectures on the Calculus of Variations, chapter V (parametric problems); Milnor (1963), Morse
@@ -15,6 +16,7 @@ Theory, section 12 (energy and length).  (Both from memory.)
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 from dataclasses import dataclass, replace
 from fractions import Fraction
@@ -53,6 +55,16 @@ class Gauged:
     problem: Problem
     squared: bool
 
+    def value(self, found: float) -> float:
+        """The original's value for one of the parametric form."""
+        if not self.squared:
+            return found
+        return -math.sqrt(found) if self.original.seek is Seek.MAXIMUM else math.sqrt(found)
+
+    def slope(self, found: float) -> float:
+        """The derivative of the original's value by that of the parametric form."""
+        return 1 / (2 * self.value(found)) if self.squared else 1.0
+
 
 def in_parametric_form(problem: Problem, sizes: Callable[[], dict[str, float]], squared: bool) -> Gauged | None:
     """The problem in parametric form, or None where that does not apply.
@@ -76,7 +88,7 @@ def in_parametric_form(problem: Problem, sizes: Callable[[], dict[str, float]], 
     if max(degrees) != 1:
         return None
     integrand = form.raised(integrand, 1 - degree)
-    squared = squared and problem.seek is Seek.MINIMUM and problem.endpoint is None and not problem.integrals
+    squared = squared and problem.seek is not Seek.STATIONARY and problem.endpoint is None and not problem.integrals
     x = problem.independent
     unknowns = [
         Unknown(x, 1, unit=problem.independent_unit, guess=_straight(problem)),
@@ -101,6 +113,7 @@ def in_parametric_form(problem: Problem, sizes: Callable[[], dict[str, float]], 
         else:
             endpoints.append(Condition(here, place.tree, place.tree, place.label, ""))
     if squared:
+        integrand = Negative(integrand) if problem.seek is Seek.MAXIMUM else integrand
         endpoints += [Condition(At(name, 1, at), ZERO, ZERO, f"{name} starts or ends at rest", "")
                       for at, place in zip((ZERO, ONE), problem.places, strict=True) if _infinite(problem, place)
                       for name in (x, *sorted(names))]  # fmt: skip
@@ -111,6 +124,7 @@ def in_parametric_form(problem: Problem, sizes: Callable[[], dict[str, float]], 
         independent=PARAMETER,
         places=(Place(ZERO, "0"), Place(ONE, "1")),
         unknowns=tuple(unknowns),
+        seek=Seek.MINIMUM if squared else problem.seek,
         integrand=Power(integrand, Number(2.0, "2")) if squared else integrand,
         endpoint=endpoint,
         parameters=tuple(parameters),

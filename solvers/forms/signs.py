@@ -1,6 +1,7 @@
 """Is the integrand of one sign?  Only then is the least integral of its square that of the integrand itself.
 
-Where its square is minimised instead (`gauge`), a negative integrand would be driven to zero.  Interval arithmetic
+Where its square is minimised instead (`gauge`), a negative integrand would be driven to zero; for a maximum the
+opposite of the integrand is meant.  Interval arithmetic
 proves the sign for all curves; where it cannot, the sign is looked at along the first guess and along the curve found:
 near a curve on which the integrand is positive both problems have the same extremals.
 """
@@ -16,7 +17,7 @@ from solvers.curve import Curve
 from solvers.forms.gauge import Gauged
 from solvers.formula.evaluate import evaluate
 from solvers.formula.nodes import Node, Power
-from solvers.problem import Problem
+from solvers.problem import Problem, Seek
 from solvers.starts.sketch import ARRAYS
 from solvers.transcription.limits import number
 from solvers.transcription.trajectory import Trajectory, curve
@@ -27,8 +28,14 @@ MIDDLES = (np.arange(8) + 0.5) / 8
 """Where every interval is looked at."""
 
 
-def never_negative(problem: Problem) -> bool:
-    """Whether the integrand is proved to be nowhere negative, whatever the curve within its bounds."""
+def better_below(problem: Problem) -> float:
+    """1 where a lower value is the better one, else -1."""
+    return -1.0 if problem.seek is Seek.MAXIMUM else 1.0
+
+
+def one_signed(problem: Problem) -> bool:
+    """Whether the integrand is proved to be nowhere negative, for a maximum nowhere positive, whatever the curve within
+    its bounds."""
     constants = {c.name: c.value for c in problem.constants}
     try:
         first, last = (number(problem.places[k].tree, constants) for k in (0, -1))
@@ -36,7 +43,8 @@ def never_negative(problem: Problem) -> bool:
         first, last = -np.inf, np.inf
     if problem.integrand is None or not first < last:
         return False
-    return shape_of(problem.integrand, known(problem, constants, first, last), unfolding(problem)).low >= 0
+    shape = shape_of(problem.integrand, known(problem, constants, first, last), unfolding(problem))
+    return shape.high <= 0 if problem.seek is Seek.MAXIMUM else shape.low >= 0
 
 
 def positive(values: Array) -> bool:

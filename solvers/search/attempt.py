@@ -11,6 +11,7 @@ from solvers.transcription.collocation import Family
 from solvers.transcription.functions import Compiled
 from solvers.transcription.layout import Layout
 from solvers.transcription.mesh import Mesh, interval, uniform
+from solvers.transcription.natural import at_natural_sizes
 from solvers.transcription.program import Program, transcribe
 from solvers.transcription.scaling import Scales, find_row_sizes, find_scales
 
@@ -35,6 +36,8 @@ def first_mesh(stretches: int, count: int = FIRST_INTERVALS) -> Mesh:
 
 def make_program(compiled: Compiled, mesh: Mesh, where: Layout, z: Array, before: Scales | None = None) -> Program:
     """A program whose scales come from values (SI) on its mesh, and do not fall far below those of the mesh before."""
+    if before is None:
+        z = at_natural_sizes(compiled, mesh, where, z)
     scales = find_scales(compiled, where, z, before)
     return transcribe(compiled, mesh, where, scales, find_row_sizes(compiled, where, scales, z))
 

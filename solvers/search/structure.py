@@ -90,6 +90,26 @@ def switches(path: Trajectory) -> list[Switch]:
     return merged if len(merged) <= MOST_SWITCHES else []
 
 
+LEAP = 0.1
+"""How far a control leaps at a break, relative to its size, where it switches just there."""
+
+
+def jumps_at_breaks(path: Trajectory) -> bool:
+    """Whether a control that has limits leaps at a break of a plain mesh.
+
+    That is an accident, and the points do not notice it: but where between the points beside it the control wants to
+    switch, and with it the costate, remains open.
+    """
+    where = path.program.layout
+    if any(place.label.startswith(SWITCH + " ") for place in path.program.compiled.lowered.problem.places):
+        return False
+    inner = np.setdiff1d(where.first[1:-1], where.first[where.at_place])
+    controls = path.program.compiled.lowered.controls
+    limited = [controls.index(signal.quantity) for signal in signals(path) if not signal.state]
+    leaps = np.abs(path.controls[inner] - path.controls[inner - 1])[:, limited]
+    return bool((leaps > LEAP * np.abs(path.controls[:, limited]).max(axis=0, initial=1e-300)).any())
+
+
 def _changes(path: Trajectory, signal: Signal) -> list[Switch]:
     """Places where the label of a signal changes.
 

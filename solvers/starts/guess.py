@@ -21,6 +21,7 @@ from solvers.transcription.functions import Compiled
 from solvers.transcription.layout import Layout
 from solvers.transcription.limits import constants_of, interval_of, number
 from solvers.transcription.mesh import Mesh
+from solvers.transcription.natural import natural_sizes
 
 Array = NDArray[np.float64]
 Limits = Sequence[tuple[float, float]]
@@ -54,7 +55,8 @@ def guesses(compiled: Compiled, mesh: Mesh, where: Layout) -> list[Guess]:
     limits = _limits(compiled)
     found = [_guess(compiled, where, sketch.bent(Bend()), limits)]
     if found[0].violation > 1e-3:
-        found += [replace(_guess(compiled, where, sketch.bent(bend), limits), bent=True) for bend in BENDS]
+        sizes = natural_sizes(compiled, mesh, where, found[0].z)
+        found += [replace(_guess(compiled, where, sketch.bent(bend, sizes), limits), bent=True) for bend in BENDS]
     # A bend must be clearly better than none.
     return sorted(found, key=lambda guess: guess.violation * (1.1 if guess.bent else 1.0))
 
@@ -73,13 +75,21 @@ def _limits(compiled: Compiled) -> Limits:
     return [interval_of(condition, constants) for condition in (*compiled.pointwise, *compiled.conditions)]
 
 
+WIDE = 20.0
+"""Bounds so far apart, as a factor, have their middle in orders of magnitude."""
+
+
 def first_value(parameter: Parameter) -> float:
     """A value inside the bounds, or the user's."""
     lower, upper = parameter.lower, parameter.upper
     if parameter.guess is not None:
         return parameter.guess
     if np.isfinite(lower) and np.isfinite(upper):
-        return float(np.sqrt(lower * upper)) if lower > 0 and upper > 20 * lower else (lower + upper) / 2
+        if lower > 0 and upper > WIDE * lower:
+            return float(np.sqrt(lower * upper))
+        if upper < 0 and lower < WIDE * upper:
+            return -float(np.sqrt(lower * upper))
+        return (lower + upper) / 2
     if np.isfinite(lower):
         return lower + max(1.0, abs(lower))
     if np.isfinite(upper):

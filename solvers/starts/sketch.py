@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from functools import lru_cache
+from types import MappingProxyType
 from typing import Any
 
 import numpy as np
@@ -67,8 +68,8 @@ class Sketch:
             rows.append(_slopes(unknown.guess, grid) if lines else np.gradient(rows[-1], grid))
         return rows
 
-    def bent(self, bend: Bend) -> Array:
-        """All variables (SI) but the integrals, which stay zero."""
+    def bent(self, bend: Bend, sizes: Mapping[str, float] = MappingProxyType({})) -> Array:
+        """All variables (SI) but the integrals, which stay zero.  `sizes` are those of unknowns that else are zero."""
         lowered, where, grid = self._compiled.lowered, self._where, self._grid
         start, span = self._places[0], self._places[-1] - self._places[0]
         z = np.zeros(where.size)
@@ -76,7 +77,7 @@ class Sketch:
         for turn, (unknown, drawn) in enumerate(zip(lowered.problem.unknowns, self._rows, strict=True)):
             rows = list(drawn)
             if bend.size and unknown.order and (unknown.guess is None or unknown.sketched):
-                _add(bend, rows, (grid - start) / span, span, turn)
+                _add(bend, rows, (grid - start) / span, span, sizes.get(unknown.name, span), turn)
             modes = lowered.problem.start.modes.get(unknown.name, ())
             if modes:
                 held = {index for index, _ in self._known.get((unknown.name, 0), ())}
@@ -154,9 +155,12 @@ def _lines(
     return rows
 
 
-def _add(bend: Bend, rows: list[Array], fraction: Array, span: float, turn: int) -> None:
-    """Add a bend that is flat enough at both ends for the unknown's order; every second unknown is out of step."""
-    size = float(np.abs(rows[0]).max()) or abs(span)
+def _add(bend: Bend, rows: list[Array], fraction: Array, span: float, size: float, turn: int) -> None:
+    """Add a bend that is flat enough at both ends for the unknown's order; every second unknown is out of step.
+
+    It is relative to the unknown, or to `size` where that is zero.
+    """
+    size = float(np.abs(rows[0]).max()) or abs(size)
     for k, shape in enumerate(_shapes(len(rows) - 1, bend.waves - 1 + turn % 2)):
         rows[k] = rows[k] + bend.size * size * polynomial.polyval(fraction, shape) / span**k
 

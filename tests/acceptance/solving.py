@@ -5,18 +5,24 @@ from __future__ import annotations
 import multiprocessing
 import os
 import time
-from dataclasses import dataclass, replace
-from math import inf
+from collections.abc import Mapping
+from dataclasses import dataclass, field, replace
+from math import inf, nan
 from multiprocessing.connection import Connection
 from pathlib import Path
+from random import Random
 
 from service.threads import ONE_THREAD
-from solvers.solution import Status, Verdict
+from solvers.solution import Solution, Status, Verdict
 from tests.acceptance.records import Figure
+from tests.acceptance.restating import CHANGES, Restated
 
 os.environ.update(ONE_THREAD)
 PROCESSES = multiprocessing.get_context("forkserver")
 PROCESSES.set_forkserver_preload(["service.assemble", "solvers.solve", __name__])
+
+SHARES = (0.1, 0.35, 0.62, 0.9)
+"""Where curves are compared, as shares of their range."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -32,15 +38,24 @@ class Outcome:
     meshes: int = 0
     seconds: float = 0.0
     trouble: str = ""
+    samples: Mapping[str, tuple[float, ...]] = field(default_factory=dict)
+    """By unknown, its values (SI) at `SHARES` of the whole range; NaN where an arc lacks it."""
 
 
 def solve_document(
-    document: Path, figures: tuple[Figure, ...] = (), seconds: float = 240.0, longest: float = inf
+    document: Path,
+    figures: tuple[Figure, ...] = (),
+    seconds: float = 240.0,
+    longest: float = inf,
+    change: str = "",
 ) -> Outcome:
-    """Solve in a process of its own; end it after `seconds`.  `longest` bounds the document's own time limit."""
+    """Solve in a process of its own; end it after `seconds`.  `longest` bounds the document's own time limit.
+
+    `change` states the problem in another way first (`restating.CHANGES`); what is told is of the problem as it stands.
+    """
     began = time.perf_counter()
     receiver, sender = PROCESSES.Pipe(duplex=False)
-    child = PROCESSES.Process(target=_send_outcome, args=(sender, document, figures, longest), daemon=True)
+    child = PROCESSES.Process(target=_send_outcome, args=(sender, document, figures, longest, change), daemon=True)
     child.start()
     sender.close()
     try:
@@ -56,9 +71,9 @@ def solve_document(
     return Outcome(trouble=trouble, seconds=time.perf_counter() - began)
 
 
-def _send_outcome(sender: Connection, document: Path, figures: tuple[Figure, ...], longest: float) -> None:
+def _send_outcome(sender: Connection, document: Path, figures: tuple[Figure, ...], longest: float, change: str) -> None:
     try:
-        sender.send(outcome_of(document, figures, longest))
+        sender.send(outcome_of(document, figures, longest, change))
     except Exception as error:  # whatever happens is an outcome of this document, not of the test run
         place = error.__traceback__
         while place and place.tb_next:
@@ -67,7 +82,7 @@ def _send_outcome(sender: Connection, document: Path, figures: tuple[Figure, ...
         sender.send(Outcome(trouble=f"{type(error).__name__}: {error}{where}"))
 
 
-def outcome_of(document: Path, figures: tuple[Figure, ...] = (), longest: float = inf) -> Outcome:
+def outcome_of(document: Path, figures: tuple[Figure, ...] = (), longest: float = inf, change: str = "") -> Outcome:
     """Read, assemble and solve in this process; raises what these raise."""
     from service.assemble import assemble
     from service.spec import read
@@ -76,8 +91,9 @@ def outcome_of(document: Path, figures: tuple[Figure, ...] = (), longest: float 
     problem = assemble(read(document.read_bytes()))
     limit = min(problem.options.time_limit, longest)
     problem = replace(problem, options=replace(problem.options, time_limit=limit))
+    restated = CHANGES[change](problem, Random(document.stem + change)) if change else Restated(problem)
     began = time.perf_counter()
-    solution = solve(problem)
+    solution = solve(restated.problem)
     seconds = time.perf_counter() - began
 
     factors = {unknown.name: unknown.unit.factor for unknown in problem.unknowns}
@@ -102,14 +118,34 @@ def outcome_of(document: Path, figures: tuple[Figure, ...] = (), longest: float 
     def in_units(value: float | None) -> float | None:
         return None if value is None else float(value) / problem.value_unit.factor
 
+    value, value_error = solution.value, solution.value_error
     return Outcome(
         verdict=solution.verdict,
-        value=in_units(solution.value),
-        value_error=in_units(solution.value_error),
+        value=in_units(None if value is None else restated.value * value),
+        value_error=in_units(None if value_error is None else abs(restated.value) * value_error),
         figures=tuple(figure(asked) for asked in figures),
         failed_checks=tuple(check.name for check in solution.checks if check.status is Status.FAILED),
         iterations=solution.iterations,
         meshes=len(solution.meshes),
         seconds=seconds,
         trouble=solution.diagnosis.sentence if solution.diagnosis else "",
+        samples=_samples(solution, restated),
     )
+
+
+def _samples(solution: Solution, restated: Restated) -> dict[str, tuple[float, ...]]:
+    """The curve at shares of its range, in the variables of the problem as it was stated first."""
+    curves = [solution.curve] if solution.curve is not None else [arc.curve for arc in solution.arcs]
+    if not curves:
+        return {}
+    first, last = curves[0].breaks[0], curves[-1].breaks[-1]
+    found = {}
+    for unknown in restated.problem.unknowns:
+        values = []
+        for share in SHARES:
+            place = first + (1 - share if restated.turned else share) * (last - first)
+            curve = next((curve for curve in curves if place <= curve.breaks[-1]), curves[-1])
+            known = unknown.name in curve.functions
+            values.append(float(curve.evaluate(unknown.name, [place])[0]) if known else nan)
+        found[unknown.name] = tuple(restated.sizes.get(unknown.name, 1.0) * value for value in values)
+    return found

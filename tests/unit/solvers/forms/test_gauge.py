@@ -7,6 +7,7 @@ from solvers.deadline import in_seconds
 from solvers.forms.gauge import PARAMETER, SPEED, in_parametric_form
 from solvers.formula.evaluate import REAL, evaluate
 from solvers.formula.nodes import At, Call, Name, walk
+from solvers.problem import Seek
 from solvers.search.pursuit import pursue
 from solvers.transcription.mesh import uniform
 from tests.unit.solvers.problems import shape, solved_on
@@ -114,12 +115,21 @@ def test_where_it_does_not_apply(members):
     assert in_parametric_form(flat("sqrt(1 + y'^2)", **members), lambda: SIZES, squared=False) is None
 
 
+def test_the_greatest_of_a_negative_integrand_is_the_least_of_its_opposite():
+    """Its square is minimised too, and the root is taken with the sign that it had."""
+    gauged = in_parametric_form(flat("", functional={"seek": "maximum", "integrand": "-sqrt(1 + y'^2)"}),
+                                lambda: SIZES, squared=True)  # fmt: skip
+    assert gauged.squared
+    assert gauged.problem.seek is Seek.MINIMUM
+    assert gauged.value(4.0) == -2.0
+    assert gauged.slope(4.0) == -0.25
+
+
 def test_the_square_is_granted_only_where_it_is_right():
     """Where anything but the integral counts, its square has other extremals."""
     whole = "sqrt(1 + y'^2)"
     assert in_parametric_form(flat(whole), lambda: SIZES, squared=True).squared
     for members in (
-        {"functional": {"seek": "maximum", "integrand": whole}},
         {"functional": {"seek": "stationary", "integrand": whole}},
         {"functional": {"integrand": whole, "endpoint": "y(1)^2"}, "endpoints": ["y(0) = 1"]},
         {"constraints": [f"integral({whole}) = 2"], "functional": {"integrand": f"y*{whole}"}},

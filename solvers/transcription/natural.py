@@ -1,0 +1,155 @@
+"""Natural sizes: how large an unknown is of which the data say nothing, read off the formulas.
+
+A chain of given length between two points at the same height may hang down by a micrometre or by a kilometre; the
+formulas tell.  Along a bend of size a every output of the problem is followed over many powers of ten of a.  Where one
+of its terms takes over from another, or it reaches a limit, its growth changes: sqrt(1 + y'^2) is constant below a
+slope of one and linear above.  The size at which most changes is the natural one, whatever the units are.  A pure
+power changes nowhere, so that nothing is said.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+import numpy as np
+from numpy.polynomial import Polynomial
+from numpy.typing import NDArray
+
+from solvers.transcription.evaluation import mapped, point_inputs
+from solvers.transcription.functions import SMOOTHING, Compiled, rounds
+from solvers.transcription.layout import Layout
+from solvers.transcription.limits import constants_of, interval_of, quantity_bounds
+from solvers.transcription.mesh import Mesh
+
+Array = NDArray[np.float64]
+
+POWERS = np.arange(-15, 16)
+"""Powers of ten, around the length of the range, that are looked at."""
+CHANGE = 0.25
+"""Least change of growth, summed over the outputs, that tells a size."""
+ALIKE = 0.5
+"""Share of the largest change that is told from it: of several sizes the one nearest to the range is taken."""
+
+
+def natural_sizes(compiled: Compiled, mesh: Mesh, where: Layout, z: Array) -> dict[str, float]:
+    """The natural sizes of the unknowns that are zero all along z (SI) and have no bounds, as far as there are any."""
+    found = {}
+    for name, order in _unsized(compiled, where, z):
+        size = _natural(compiled, mesh, where, z, name, order)
+        if size is not None:
+            found[name] = size
+    return found
+
+
+def at_natural_sizes(compiled: Compiled, mesh: Mesh, where: Layout, z: Array) -> Array:
+    """z with a bend of its natural size where an unknown is zero all along, so that sizes can be taken from it."""
+    found = natural_sizes(compiled, mesh, where, z)
+    bent = z.copy()
+    for name, size in found.items():
+        _bend(compiled, mesh, where, bent, name, size)
+    if found:
+        bent[where.integrals] = _totals(compiled, where, bent[None])[0]
+    return bent
+
+
+def _unsized(compiled: Compiled, where: Layout, z: Array) -> Iterator[tuple[str, int]]:
+    """Unknowns that are zero, with all their derivatives, and whose bounds do not tell a size, with their order."""
+    lowered = compiled.lowered
+    bounds = quantity_bounds(compiled)
+    known = set()
+    for quantities, indices, lower, upper in (
+        (lowered.states, np.vstack([where.nodes, where.inner]), bounds[0], bounds[1]),
+        (lowered.controls, where.controls, bounds[2], bounds[3]),
+    ):
+        values = np.abs(z[indices]).max(axis=0, initial=0.0)
+        limits = np.maximum(*(np.where(np.isfinite(limit), np.abs(limit), 0.0) for limit in (lower, upper)))
+        known |= {name for (name, _), size in zip(quantities, values + limits, strict=True) if size > 0}
+    for unknown in lowered.problem.unknowns:
+        if unknown.order and unknown.name not in known:
+            yield unknown.name, unknown.order
+
+
+def _natural(compiled: Compiled, mesh: Mesh, where: Layout, z: Array, name: str, order: int) -> float | None:
+    """The size of one unknown at which the growth of the outputs changes most."""
+    span = abs(float(np.ptp(z[where.places]))) or 1.0
+    sizes = span * 10.0**POWERS
+    bent = np.tile(z, (len(sizes), 1))
+    for row, size in zip(bent, sizes, strict=True):
+        _bend(compiled, mesh, where, row, name, size)
+    with np.errstate(all="ignore"):  # what vanishes or overflows tells nothing
+        growth = np.log10(_outputs(compiled, where, bent))
+        change = np.abs(growth[2:] - 2 * growth[1:-1] + growth[:-2])
+    change = np.minimum(np.where(np.isfinite(change), change, 0.0), 1.0)
+    change[np.isfinite(growth[1:-1]) & np.isnan(growth[2:])] = 1.0  # beyond this size it has no value
+    change = change.sum(axis=1)
+    if rounds(compiled.lowered.problem):
+        change[np.abs(np.log10(sizes[1:-1] / SMOOTHING)) < 2] = 0.0
+    if not change.max(initial=0.0) >= CHANGE:
+        return None
+    inner = POWERS[1:-1]
+    told = np.flatnonzero(change >= ALIKE * change.max())
+    return float(span * 10.0 ** inner[told[np.argmin(np.abs(inner[told]))]])
+
+
+def _bend(compiled: Compiled, mesh: Mesh, where: Layout, z: Array, name: str, size: float) -> None:
+    """Add a bend of a size to one unknown and its derivatives, in z itself; what is given at an end stays."""
+    lowered = compiled.lowered
+    places = z[where.places]
+    span = float(np.ptp(places)) or 1.0
+    nodes, points = ((at - places[0]) / span for at in (mesh.breaks(places), where.points(places)))
+    last = len(places) - 1
+    held = {place for state, place, c in compiled.fixed if c.equality and lowered.states[state] == (name, 0)}
+    shape = Polynomial([1.0, 0.0, 0.5])
+    if 0 in held:
+        shape = shape * Polynomial([0.0, 1.0])
+    if last in held:
+        shape = shape * Polynomial([1.0, -1.0])
+    for quantities, indices, at in (
+        (lowered.states, where.nodes, nodes),
+        (lowered.states, where.inner, points),
+        (lowered.controls, where.controls, points),
+    ):
+        for column, (other, order) in enumerate(quantities):
+            if other == name:
+                rate = shape.deriv(order) if order else shape
+                z[indices[:, column]] += size * rate(at) / span**order
+
+
+def _outputs(compiled: Compiled, where: Layout, bent: Array) -> Array:
+    """How large each output is along each of some curves (curves x outputs), from its limits where it has any."""
+    point, constants = compiled.point, constants_of(compiled)
+    values = _values(compiled, where, bent)
+    columns = [values[:, :, k] for k in range(point.states)]
+    for k, condition in enumerate(compiled.pointwise, start=point.states):
+        limits = [limit for limit in interval_of(condition, constants) if np.isfinite(limit)]
+        columns += [values[:, :, k] - limit for limit in dict.fromkeys(limits)]
+    first = point.states + point.constraints
+    columns += [values[:, :, k] for k in range(first, point.outputs)]
+    ends = mapped(
+        compiled.end.value, _end_inputs(compiled, where, bent), np.array(compiled.constants, dtype=float)[None]
+    )
+    for k, condition in enumerate(compiled.conditions):
+        limits = [limit for limit in interval_of(condition, constants) if np.isfinite(limit)]
+        columns += [ends[:, [k]] - limit for limit in dict.fromkeys(limits)]
+    columns.append(ends[:, -1:])
+    return np.stack([np.abs(column).mean(axis=1) for column in columns], axis=1)
+
+
+def _values(compiled: Compiled, where: Layout, bent: Array) -> Array:
+    """The outputs of the point function along some curves (curves x M x outputs)."""
+    inputs = [point_inputs(compiled, where, z) for z in bent]
+    v, d = (np.vstack(parts) for parts in zip(*inputs, strict=True))
+    return mapped(compiled.point.value, v, d).reshape(len(bent), len(where.fractions), -1)
+
+
+def _totals(compiled: Compiled, where: Layout, bent: Array) -> Array:
+    """The integrals along some curves."""
+    first = compiled.point.states + compiled.point.constraints
+    values = _values(compiled, where, bent)[:, :, first : first + compiled.point.integrals]
+    return np.asarray(np.einsum("m,cmi->ci", where.measures, np.nan_to_num(values, posinf=0.0, neginf=0.0)))
+
+
+def _end_inputs(compiled: Compiled, where: Layout, bent: Array) -> Array:
+    """The inputs of the end function along some curves."""
+    nodes = bent[:, where.nodes[where.at_place].ravel()]
+    return np.hstack([nodes, bent[:, where.places], bent[:, where.parameters], _totals(compiled, where, bent)])
