@@ -68,8 +68,8 @@ class _Slacks:
             case Name(name=name):
                 return self._constants.get(name)
             case Negative(operand=operand):
-                value = self._given(operand)
-                return None if value is None else -value
+                opposite = self._given(operand)
+                return None if opposite is None else -opposite
         return None
 
     def _slack(self, kink: Call, above: bool) -> Name:
@@ -80,10 +80,10 @@ class _Slacks:
         if kink.function == "abs":
             branches.append((kink.arguments[0], False))
         zero = Number(0.0, "0")
-        limits, side = ((zero, None), "above") if above else ((None, zero), "below")
+        lower, upper, side = (zero, None, "above") if above else (None, zero, "below")
         for argument, subtracted in branches:
             body = Sum((slack, argument), (False, subtracted))
-            self.constraints.append(Condition(body, *limits, f"{kink.function} from {side}", ""))
+            self.constraints.append(Condition(body, lower, upper, f"{kink.function} from {side}", ""))
         return slack
 
 

@@ -32,16 +32,24 @@ class Restated:
 
 
 def in_other_units(problem: Problem, random: Random, power: int = 6) -> Restated:
-    """Every variable, parameter and the value in another unit: powers of ten, no two more than 10^`power` apart."""
+    """Every variable, parameter and the value in another unit: powers of ten, no two more than 10^`power` apart.
+
+    What is fitted to observations has one unit, and so have the parameters of the fit.
+    """
     lowest = random.randint(-power, 0)
 
     def size() -> float:
         return 10.0 ** random.randint(lowest, lowest + power)
 
     step = size()
+    if problem.observations:
+        one, rate = size(), size()
+        sizes = dict.fromkeys((unknown.name for unknown in problem.unknowns), one)
+        factors = dict.fromkeys((parameter.name for parameter in problem.parameters), rate)
+        return _changed(problem, step, 0.0, sizes, factors, one**2)
     sizes = {unknown.name: size() for unknown in problem.unknowns}
     factors = {parameter.name: size() for parameter in problem.parameters}
-    return _changed(problem, step, 0.0, sizes, factors, 1.0 if problem.observations else size())
+    return _changed(problem, step, 0.0, sizes, factors, size())
 
 
 def from_another_origin(problem: Problem, random: Random) -> Restated:
@@ -285,8 +293,11 @@ class _Change:
         return replace(condition, body=body, lower=scaled_lower, upper=scaled_upper)
 
     def _observation(self, observation: Observation) -> Observation:
-        points = tuple(replace(p, place=self._places[id(p.place)]) for p in observation.points)
-        return replace(observation, body=self.tree(observation.body), points=points)
+        """What was measured is one of the unknowns; the unit of a misfit is its own."""
+        assert isinstance(observation.body, Name) and observation.body.order == 0
+        size = self._sizes[observation.body.name]
+        points = (replace(p, place=self._places[id(p.place)], value=p.value / size) for p in observation.points)
+        return replace(observation, points=tuple(points))
 
     def _arc(self, arc: Arc) -> Arc:
         last = len(self._problem.places) - 1
