@@ -34,6 +34,7 @@ from solvers.minimise.ipopt import FLOOR
 from solvers.problem import Continuation, Problem, Seek
 from solvers.search.attempt import first_mesh
 from solvers.search.chatter import chatter
+from solvers.search.escape import escapes
 from solvers.search.pursuit import go_on, pursue
 from solvers.search.record import End, Pursuit
 from solvers.search.sharpen import sharpen
@@ -270,6 +271,9 @@ def _solution(
     solved_at = time.perf_counter()
     if gauged is not None and pursuit.solved:
         pursuit = _with_uprights(pursuit, gauged)
+    if not brief and pursuit.end in (End.CONVERGED, End.SETTLED) and problem.seek is not Seek.STATIONARY:
+        findings = escapes(pursuit, in_seconds(problem.options.time_limit))
+        pursuit = replace(pursuit, end=End.AWAY, findings=findings) if findings else pursuit
     diagnosis = diagnose(pursuit)
     times = {"solve": solved_at - began}
     if not pursuit.solved:

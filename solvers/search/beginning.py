@@ -44,6 +44,7 @@ def begin(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Program, Minimum] | N
         where = layout(compiled, mesh)
         for guess in guesses(compiled, mesh, where)[: 2 if attempt else 3]:
             program = make_program(compiled, mesh, where, guess.z)
+            pursuit.first = pursuit.first or program
             doubtful = {"ipopt.max_iter": DOUBTFUL_ITERATIONS} if End.INFEASIBLE in ends else {}
             minimum = minimise_(program, Start(guess.z / program.scale), options | doubtful)
             if minimum.outcome is Outcome.FAILED and _outgrown(minimum):

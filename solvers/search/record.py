@@ -27,6 +27,7 @@ class End(Enum):
     INFEASIBLE = "infeasible"
     UNBOUNDED = "unbounded"
     TORN = "degenerates"  # the curve tends to one that jumps
+    AWAY = "runs away"  # the curve is the better the farther it goes
     UNDEFINED = "undefined"
     FAILED = "no progress"
 
@@ -43,6 +44,7 @@ class Pursuit:
     estimates: list[refinement.Estimate] = field(default_factory=list)
     nearest: Trajectory | None = None  # the curve that violates least, where none satisfies all conditions
     last: tuple[Program, Minimum] | None = None
+    first: Program | None = None  # the one whose sizes are those of the first guess
     findings: tuple[Finding, ...] = ()
     value_error: float = np.inf
     curve_error: float = np.inf

@@ -56,7 +56,7 @@ def from_another_origin(problem: Problem, random: Random) -> Restated:
     """The independent variable counted from elsewhere, a hundred to a thousand times its largest given value away."""
     constants = {c.name: c.value for c in problem.constants}
     given = [abs(v) for place in problem.places if (v := _fixed(place.tree, constants)) is not None]
-    origin = random.choice((-1, 1)) * round(random.uniform(100, 1000)) * (max(given) or 1.0)
+    origin = random.choice((-1, 1)) * round(random.uniform(100, 1000)) * (max(given, default=0.0) or 1.0)
     return _changed(problem, 1.0, origin)
 
 

@@ -16,8 +16,10 @@ from solvers.search.structure import (
     switches,
     with_switches,
 )
+from solvers.solution import Verdict
+from solvers.solve import solve
 from solvers.transcription.mesh import uniform
-from tests.unit.solvers.problems import path_along, program_of, solved_on, stated
+from tests.unit.solvers.problems import path_along, program_of, shape, solved_on, stated
 
 TENTHS = uniform(1, 10, 4)
 LINEAR = [("u", 0)]
@@ -114,3 +116,12 @@ def test_the_softening_is_a_small_share_of_the_value(seek, sign):
     assert at_the_limit == pytest.approx(sign * 1e-3 * abs(path.program.value_scale))
     assert evaluate(soft.integrand, lambda name, order: 0.0, REAL) == 0
     assert program_of(soft).compiled.lowered.states == (("x", 0),)
+
+
+def test_a_switch_that_falls_on_a_break_is_seen():
+    """The least integral of y with |y'| <= 1 between zeros is the corner in the middle, where the first mesh has a
+    break: from there every costate that vanishes between the points beside it would do."""
+    found = solve(shape(functional={"integrand": "y"}, independent={"name": "x", "from": 0, "to": 1},
+                        endpoints=["y(0) = 0", "y(1) = 0"], constraints=["-1 <= y' <= 1"]))  # fmt: skip
+    assert found.verdict is Verdict.GLOBAL_MINIMUM
+    assert abs(found.value + 1 / 4) <= found.value_error < 1e-8
