@@ -201,9 +201,11 @@ def _solved(body: bytes) -> dict[str, Any]:
     with _refusals(body):
         tolerance = read(body).solve.tolerance
         with interruptible() as stop, progress_bar(tolerance) as report:
+            from service.engine.beside import Beside
             from service.jobs import perform  # loads the solver
 
-            return perform(body.decode("utf-8-sig"), report, stop)
+            together = Beside(len(os.sched_getaffinity(0)))
+            return perform(body.decode("utf-8-sig"), report, stop, together=together)
     raise AssertionError("a refusal exits")
 
 

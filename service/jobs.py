@@ -19,6 +19,7 @@ from pydantic_core import to_json
 
 from service.archive import result_document
 from service.assemble import assemble
+from service.engine.beside import Beside
 from service.reading import read_back, with_necessary
 from service.run import State
 from service.spec import Document, read
@@ -26,6 +27,7 @@ from service.thinning import Report, thinned
 from solvers.problem import Problem
 from solvers.solution import Progress
 from solvers.solve import solve as solve_problem
+from solvers.starts.together import IN_TURN, Together
 
 Stop = Callable[[], bool]
 
@@ -36,16 +38,23 @@ _FIGURES = ("verdict", "value", "value_error", "value_unit")
 
 
 def perform(
-    document_text: str, report: Report, stop: Stop, *, id: str | None = None, longest: float = math.inf
+    document_text: str,
+    report: Report,
+    stop: Stop,
+    *,
+    id: str | None = None,
+    longest: float = math.inf,
+    together: Together = IN_TURN,
 ) -> dict[str, Any]:
     """Solve a problem document; the result document.
 
     `report` takes the progress events of the developers' guide, `stop()` is True once the solver shall stop with what
-    it has.  `longest` bounds the document's own time limit, in seconds.  Raises Refused.
+    it has.  `longest` bounds the document's own time limit, in seconds; `together` does the
+    tasks of several starts.  Raises Refused.
     """
     began = time.perf_counter()
     document = read(document_text.encode())
-    return _performed(document, assemble(document), report, stop, id, longest, began)
+    return _performed(document, assemble(document), report, stop, id, longest, began, together)
 
 
 def _performed(
@@ -56,6 +65,7 @@ def _performed(
     id: str | None,
     longest: float,
     began: float,
+    together: Together,
 ) -> dict[str, Any]:
     """The result document of an assembled problem; `began` is when reading it did."""
     limit = min(problem.options.time_limit, longest)
@@ -74,7 +84,7 @@ def _performed(
         told = told or stop()
         return told
 
-    solution = solve_problem(problem, watch)
+    solution = solve_problem(problem, watch, together)
     understood = reading().result()
     state = State.STOPPED if told else State.FINISHED
     times = {"read": ready - began}
@@ -92,7 +102,8 @@ def solve(head: Mapping[str, Any], body: bytes, report: Report, stop: Stop) -> t
     else:
         document = read(body)
         problem = assemble(document)
-    result = _performed(document, problem, thinned(report), stop, head["id"], head["time_limit"], began)
+    result = _performed(document, problem, thinned(report), stop, head["id"], head["time_limit"], began,
+                        Beside(head.get("processes", 1)))  # fmt: skip
     figures = {name: result[name] for name in _FIGURES}
     stopped = result["state"] == State.STOPPED.value
     return {"figures": figures, "stopped": stopped}, to_json(result, inf_nan_mode="null")

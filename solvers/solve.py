@@ -42,6 +42,7 @@ from solvers.search.structure import jumps_at_breaks, present_switches
 from solvers.solution import BranchPoint, Change, Check, Price, Progress, Slope, Solution, SwitchPlace, Verdict, Watch
 from solvers.starts.extremals import solve_from_starts
 from solvers.starts.guess import guesses
+from solvers.starts.together import IN_TURN, Together
 from solvers.sweep.found import Found, Tools
 from solvers.sweep.points import sweep
 from solvers.tables.usage import table_notes
@@ -82,29 +83,32 @@ NEARLY = 30.0
 """How far from the tolerance, as a factor, plain meshes are given a chance to finish first."""
 
 
-def solve(problem: Problem, watch: Watch | None = None) -> Solution:
-    """Solve a problem.  Never raises for a numerical failure: that is an outcome with a diagnosis."""
-    found = _of_arcs(problem, watch) if problem.arcs else _from_starts(problem, watch)
+def solve(problem: Problem, watch: Watch | None = None, together: Together = IN_TURN) -> Solution:
+    """Solve a problem.  Never raises for a numerical failure: that is an outcome with a diagnosis.
+
+    `together` does the tasks of several starts; raises what it raises.
+    """
+    found = _of_arcs(problem, watch, together) if problem.arcs else _from_starts(problem, watch, together)
     note = _about_switches(problem, found)
     return replace(found, notes=(*found.notes, note)) if note else found
 
 
-def _of_arcs(problem: Problem, watch: Watch | None) -> Solution:
+def _of_arcs(problem: Problem, watch: Watch | None, together: Together) -> Solution:
     """Arcs are solved beside each other, on one common variable."""
     beside = side_by_side(problem)
 
     def hear(progress: Progress) -> bool:  # the common variable means nothing to a reader
         return watch is not None and watch(replace(progress, breaks=None))
 
-    return rejoin(beside, _from_starts(with_sketches(beside), hear))
+    return rejoin(beside, _from_starts(with_sketches(beside), hear, together))
 
 
-def _from_starts(problem: Problem, watch: Watch | None) -> Solution:
+def _from_starts(problem: Problem, watch: Watch | None, together: Together) -> Solution:
     """Solve a problem without arcs from as many starts as are asked for, and sweep it where that is asked for."""
     began = time.perf_counter()
     deadline = in_seconds(problem.options.time_limit)
     if problem.options.starts > 1:
-        solution = solve_from_starts(problem, watch, _solve_once, _first_look(problem)[0])
+        solution = solve_from_starts(problem, watch, _solve_once, _first_look(problem)[0], together)
         varied = problem.sweeps or problem.continuation
         found = _found(problem, watch, deadline) if varied else None  # variants begin at the default guess
     else:

@@ -15,7 +15,6 @@ so that the child ends with its parent even then.
 from __future__ import annotations
 
 import argparse
-import ctypes
 import gc
 import importlib
 import os
@@ -31,13 +30,13 @@ from collections.abc import Callable, Mapping
 from typing import Any
 
 from service.engine.frames import Unpacker, pack
+from service.engine.lifeline import die_with
 from service.memory import give_back, keep_freed
 
 Report = Callable[[dict[str, Any]], None]
 Stop = Callable[[], bool]
 Function = Callable[[Mapping[str, Any], bytes, Report, Stop], tuple[Mapping[str, Any], bytes]]
 
-_PR_SET_PDEATHSIG = 1
 _SWITCH_SECONDS = (
     0.0005  # a solver that comes back to Python waits so long for another thread, ten times less than usual
 )
@@ -73,12 +72,6 @@ class _Line:
                         self.jobs.put(frame)
         finally:
             os._exit(0)
-
-
-def _die_with(parent: int) -> None:
-    ctypes.CDLL(None).prctl(_PR_SET_PDEATHSIG, signal.SIGKILL)
-    if os.getppid() != parent:  # it died before the line above
-        os._exit(0)
 
 
 def _protect_the_machine(address_space: int) -> None:
@@ -133,7 +126,7 @@ def main() -> None:
     parser.add_argument("--address-space", type=int, default=0)
     given = parser.parse_args()
     gc.disable()  # what is loaded now stays: there is nothing to collect
-    _die_with(given.parent)
+    die_with(given.parent)
     signal.signal(signal.SIGINT, signal.SIG_IGN)  # Ctrl-C in a terminal is for the parent
     line = _Line(given.socket)
     threading.Thread(target=line.listen, name="listen", daemon=True).start()

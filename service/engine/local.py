@@ -7,6 +7,7 @@ import itertools
 import logging
 import threading
 import time
+from dataclasses import replace
 from functools import partial
 
 from service.engine.records import Capacity, Ending, Job, Outcome, Sink
@@ -136,5 +137,6 @@ class LocalEngine:
                     job = heapq.heappop(self._queue)[3]
                     slot.arm()
                     self._running[job.id] = slot
-                    return job
+                    free = max(0, len(self._slots) - len(self._running) - len(self._queue))
+                    return replace(job, head={**job.head, "processes": 1 + free})  # what idle slots would use
             slot.tend()

@@ -99,8 +99,19 @@ class Process:
 
     @property
     def rss(self) -> int:
-        """Resident memory in bytes; 0 where the process is gone."""
+        """Resident memory in bytes, with that of processes it has started; 0 where it is gone."""
+        started = self._started()
+        if started:  # what they still share with it counts once
+            return sum(_proportional(pid) for pid in (self.pid, *started))
         return self._pages()[0] * _PAGE
+
+    def _started(self) -> list[int]:
+        """The processes that it has started."""
+        try:
+            with open(f"/proc/{self.pid}/task/{self.pid}/children", "rb") as children:  # noqa: PTH123
+                return [int(pid) for pid in children.read().split()]
+        except (OSError, ValueError):
+            return []
 
     @property
     def own(self) -> int:
@@ -140,6 +151,15 @@ class Process:
     def printed(self) -> str:
         """The last lines that the child wrote to its outputs."""
         return self._tail.decode(errors="replace")
+
+
+def _proportional(pid: int) -> int:
+    """Resident memory of a process in bytes, shared pages divided among those that share them."""
+    try:
+        with open(f"/proc/{pid}/smaps_rollup", "rb") as rollup:  # noqa: PTH123
+            return next(int(line.split()[1]) * 1024 for line in rollup if line.startswith(b"Pss:"))
+    except (OSError, ValueError, StopIteration):
+        return 0
 
 
 def _in_words(code: int) -> str:

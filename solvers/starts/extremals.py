@@ -4,8 +4,8 @@ Two starts have led to the same extremal where values and curves agree within th
 an elastica that bends to the left for the one that bends to the right.  The distance of two curves is the mean square
 of their difference over the whole range, in which an unknown counts relative to its size.
 
-The starts are made one after the other, in the run's own process: its limits of time and memory, its soft stop and its
-kill then hold for all of them together, and no run takes the place of others that wait.
+The starts are made one after the other or beside each other (`together`): what they lead to is the same, as none knows
+of the others and they are compared in their order.
 """
 
 from __future__ import annotations
@@ -20,6 +20,7 @@ from numpy.typing import NDArray
 from solvers.curve import Curve
 from solvers.problem import Problem, Seek
 from solvers.solution import Check, Extremal, Progress, Solution, Status, Verdict, Watch
+from solvers.starts.together import IN_TURN, Lost, Task, Together
 from solvers.starts.variations import variations
 
 NAME = "other starts"
@@ -43,51 +44,62 @@ Array = NDArray[np.float64]
 Solver = Callable[[Problem, Watch | None], Solution]
 
 
-def solve_from_starts(problem: Problem, watch: Watch | None, solve_one: Solver, sizes: dict[str, float]) -> Solution:
+def solve_from_starts(
+    problem: Problem, watch: Watch | None, solve_one: Solver, sizes: dict[str, float], together: Together = IN_TURN
+) -> Solution:
     """The best of what several starts lead to, with all that was found.
 
     `solve_one` solves from one start, `sizes` are typical ones of the unknowns.  The first start may take all the time
-    there is: what it finds is found without the others too.
+    there is: what it finds is found without the others too.  Raises `RuntimeError` where every start broke.
     """
     began = time.perf_counter()
     planned = variations(problem, problem.options.starts)
-    hear = _Numbered(watch)
-    made: list[tuple[str, Solution]] = []
-    for number, variation in enumerate(planned):
-        left = problem.options.time_limit - (time.perf_counter() - began)
-        if number and (left <= 0 or hear.stopped):
-            break
-        share = left if number == 0 else min(left, 2 * left / (len(planned) - number))
-        options = replace(problem.options, time_limit=share, starts=1)
-        hear.next_start(number + 1)
-        made.append((variation.label, solve_one(replace(problem, start=variation, options=options), hear)))
-    return _together(problem, made, sizes, time.perf_counter() - began)
+
+    def task(number: int) -> Task:
+        def solved(hear: Watch) -> Solution | None:
+            left = problem.options.time_limit - (time.perf_counter() - began)
+            if number and left <= 0:
+                return None
+            share = left if number == 0 else min(left, 2 * left * together.processes / (len(planned) - number))
+            options = replace(problem.options, time_limit=share, starts=1)
+            return solve_one(replace(problem, start=planned[number], options=options), hear)
+
+        return solved
+
+    outcomes = together([task(number) for number in range(len(planned))], _Numbered(watch))
+    made = [(v.label, found) for v, found in zip(planned, outcomes, strict=True) if isinstance(found, Solution)]
+    broken = [f"{v.label}: {found.reason}" for v, found in zip(planned, outcomes, strict=True)
+              if isinstance(found, Lost)]  # fmt: skip
+    if not made:
+        raise RuntimeError("; ".join(broken))
+    return _compared(problem, made, broken, sizes, time.perf_counter() - began)
 
 
 class _Numbered:
-    """Passes signs of life on with the number of the start, and remembers that a stop was asked for."""
+    """Passes signs of life on with the number of the start; meshes and iterations are counted over all starts."""
 
     def __init__(self, watch: Watch | None) -> None:
-        self.watch, self.start, self.stopped = watch, 1, False
-        self._before, self._seen = (0, 0), (0, 0)
+        self.watch = watch
+        self._seen: dict[int, tuple[int, int]] = {}
 
-    def next_start(self, number: int) -> None:
-        """Meshes and iterations are counted on from those of the starts before."""
-        self.start, self._before = number, self._seen
-
-    def __call__(self, progress: Progress) -> bool:
-        mesh, iteration = self._before[0] + progress.mesh, self._before[1] + progress.iteration
-        self._seen = max(self._seen[0], mesh), max(self._seen[1], iteration)
-        if self.watch is not None:
-            told = replace(progress, start=self.start, mesh=mesh, iteration=iteration)
-            self.stopped = self.watch(told) or self.stopped
-        return self.stopped
+    def __call__(self, number: int, progress: Progress) -> bool:
+        mesh, iteration = self._seen.get(number, (0, 0))
+        self._seen[number] = max(mesh, progress.mesh), max(iteration, progress.iteration)
+        if self.watch is None:
+            return False
+        others = [seen for other, seen in self._seen.items() if other != number]
+        mesh, iteration = (sum(counts) for counts in zip((progress.mesh, progress.iteration), *others, strict=True))
+        return self.watch(replace(progress, start=number + 1, mesh=mesh, iteration=iteration))
 
 
-def _together(
-    problem: Problem, made: Sequence[tuple[str, Solution]], sizes: dict[str, float], seconds: float
+def _compared(
+    problem: Problem,
+    made: Sequence[tuple[str, Solution]],
+    broken: Sequence[str],
+    sizes: dict[str, float],
+    seconds: float,
 ) -> Solution:
-    """The best solution, told what the others are."""
+    """The best solution, told what the others are; `broken` are the starts that ended without one."""
     curves = [(label, found) for label, found in made if found.value is not None and found.curve is not None]
     first = made[0][1]
     if not curves:
@@ -99,20 +111,22 @@ def _together(
             groups.append([(label, found)])
         else:
             group.append((label, found))
-    merit = _Merit(problem)
+    merit = _Merit(problem, len(made) + len(broken), len(made) - len(curves), tuple(broken))
     extremals = [Extremal(min((s for _, s in g), key=merit.rank), tuple(label for label, _ in g)) for g in groups]
     extremals.sort(key=lambda extremal: merit.order(extremal.solution))
-    lost = len(made) - len(curves)
-    told = [merit.told(extremal, extremals, len(made), lost) for extremal in extremals]
+    told = [merit.told(extremal, extremals) for extremal in extremals]
     best = told[0].solution
     return replace(best, extremals=tuple(told), times={**best.times, "starts": seconds})
 
 
 @dataclass(frozen=True, slots=True)
 class _Merit:
-    """Which of two solutions of a problem is better."""
+    """Which of two solutions of a problem is better, and what became of its starts."""
 
     problem: Problem
+    starts: int  # those that were tried
+    lost: int  # those of them that led nowhere
+    broken: tuple[str, ...]  # those of them that ended by an error, with the reason
 
     @property
     def sign(self) -> float:
@@ -131,22 +145,25 @@ class _Merit:
         value = 0.0 if self.problem.seek is Seek.STATIONARY else self.sign * (solution.value or 0.0)
         return self.rank(solution), value
 
-    def told(self, extremal: Extremal, every: Sequence[Extremal], starts: int, lost: int) -> Extremal:
+    def told(self, extremal: Extremal, every: Sequence[Extremal]) -> Extremal:
         """The extremal with the check that compares it with the others."""
         solution = extremal.solution
-        check = self._check(extremal, every, starts, lost)
+        check = self._check(extremal, every)
         verdict = solution.verdict
         if check.status is Status.FAILED and verdict is not None:
             verdict = LOWERED.get(verdict, verdict)
         return replace(extremal, solution=replace(solution, verdict=verdict, checks=(*solution.checks, check)))
 
-    def _check(self, extremal: Extremal, every: Sequence[Extremal], starts: int, lost: int) -> Check:
+    def _check(self, extremal: Extremal, every: Sequence[Extremal]) -> Check:
+        starts = self.starts
         others = [other for other in every if other is not extremal]
         found = f"{starts} starts led to {len(every)} curve{'s' if len(every) > 1 else ''}"
         listed = "; ".join(self._line(other) for other in others[:5]) + ("; and more" if len(others) > 5 else "")
         sentence = f"{found}: {len(extremal.starts)} to this one{', the others to ' + listed if others else ''}."
-        if lost:
-            sentence += f" {lost} led nowhere."
+        if self.lost:
+            sentence += f" {self.lost} led nowhere."
+        if self.broken:
+            sentence += f" {len(self.broken)} ended by an error ({'; '.join(self.broken[:3])})."
         if self.problem.options.starts > starts:
             sentence += f" {self.problem.options.starts - starts} of those asked for were not tried."
         feasible = [o for o in others if self.rank(o.solution) < 3]

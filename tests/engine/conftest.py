@@ -1,6 +1,7 @@
 """What tests of the engine share: the child finds `slot_jobs`, slots and dispatchers end with their test."""
 
 import json
+import os
 import time
 from pathlib import Path
 
@@ -20,7 +21,7 @@ MEGABYTE = 2**20
 
 @pytest.fixture(autouse=True)
 def _child_finds_the_jobs(monkeypatch):
-    monkeypatch.setenv("PYTHONPATH", str(Path(__file__).parent))
+    monkeypatch.setenv("PYTHONPATH", str(Path(__file__).parent), prepend=os.pathsep)
 
 
 @pytest.fixture

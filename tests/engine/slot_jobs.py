@@ -9,6 +9,8 @@ import sys
 import time
 from pathlib import Path
 
+from service.engine.beside import Beside
+
 
 def act(head, body, report, stop):
     order = json.loads(body)
@@ -85,6 +87,17 @@ def _hog(order, report, stop):
     return len(held)
 
 
+def _hog_beside(order, report, stop):
+    """The memory is that of processes which the job has started, each less than the limit."""
+
+    def task(watch):
+        held = os.urandom(1) * (order["megabytes"] * 2**20)
+        time.sleep(30)
+        return held
+
+    return len(Beside(3)([task] * 3, lambda number, progress: False))
+
+
 def _refused_allocation(order, report, stop):
     return len(bytearray(2**45))
 
@@ -126,6 +139,7 @@ _ACTS = {
     "leave": _leave,
     "die once": _die_once,
     "hog": _hog,
+    "hog beside": _hog_beside,
     "refused allocation": _refused_allocation,
     "raise": _raise,
     "exit": _exit,

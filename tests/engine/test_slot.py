@@ -84,6 +84,12 @@ def test_a_memory_hog_is_killed_near_the_limit_and_named(slot, make_job):
     assert slot.run(make_job(say="next"), ignore).ending is Ending.ANSWERED
 
 
+def test_what_a_job_starts_is_weighed_with_it_and_dies_with_it(slot, make_job):
+    outcome = slot.run(make_job("hog beside", megabytes=120, memory=250 * MEGABYTE), ignore)
+    assert (outcome.ending, outcome.reason) == (Ending.LIMIT, "memory limit: it needed more than 250 MB")
+    assert slot.run(make_job(say="next"), ignore).ending is Ending.ANSWERED
+
+
 def test_less_memory_than_the_limit_is_granted(slot, make_job):
     assert slot.run(make_job("hog", megabytes=100, memory=250 * MEGABYTE), ignore).ending is Ending.ANSWERED
 
