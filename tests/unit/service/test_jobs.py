@@ -62,7 +62,9 @@ def test_signs_of_life_are_json_in_the_users_units():
 def test_a_bound_on_the_time_goes_before_the_documents_own(monkeypatch):
     seen = []
     monkeypatch.setattr(
-        jobs, "solve_problem", lambda problem, watch: seen.append(problem.options.time_limit) or Solution(None)
+        jobs,
+        "solve_problem",
+        lambda problem, watch, together: seen.append(problem.options.time_limit) or Solution(None),
     )
     jobs.perform(STRAIGHT, ignore, never, longest=7.0)
     jobs.perform(STRAIGHT, ignore, never, longest=1e6)
@@ -70,7 +72,7 @@ def test_a_bound_on_the_time_goes_before_the_documents_own(monkeypatch):
 
 
 def test_a_stop_reaches_the_solver_and_is_told_as_such(monkeypatch):
-    def solver(problem, watch):
+    def solver(problem, watch, together):
         assert watch(Progress("iteration", 1, 1, 8, 32)) is True
         return Solution(None, diagnosis=Diagnosis("stopped", "It was stopped."))
 
@@ -83,7 +85,7 @@ def test_a_stop_reaches_the_solver_and_is_told_as_such(monkeypatch):
 @pytest.mark.parametrize("sample", ["straight", "fin"])
 def test_what_the_server_has_assembled_is_solved_as_its_document_is(monkeypatch, sample):
     seen = []
-    monkeypatch.setattr(jobs, "solve_problem", lambda problem, watch: seen.append(problem) or Solution(None))
+    monkeypatch.setattr(jobs, "solve_problem", lambda problem, watch, together: seen.append(problem) or Solution(None))
     text = STRAIGHT.encode() if sample == "straight" else samples.text(sample).encode()
     document = read(text)
     head = {"id": "r", "time_limit": 60}
