@@ -5,7 +5,7 @@ from __future__ import annotations
 import time
 from collections.abc import Mapping
 from dataclasses import replace
-from functools import cache
+from functools import cache, partial
 from itertools import count
 from types import MappingProxyType
 
@@ -24,7 +24,8 @@ from solvers.diagnosis import diagnose
 from solvers.forms.arc_guess import with_sketches
 from solvers.forms.beside import side_by_side
 from solvers.forms.broken import with_corner
-from solvers.forms.gauge import Gauged, in_parametric_form
+from solvers.forms.gauge import Form, Gauged, in_parametric_form
+from solvers.forms.gauge_arcs import in_parametric_form_by_arcs
 from solvers.forms.graph import as_graph, checks_on_graph, prices_of_original, uprights
 from solvers.forms.rejoin import rejoin
 from solvers.forms.signs import better_below, one_signed, positive, positive_along
@@ -100,31 +101,35 @@ def _of_arcs(problem: Problem, watch: Watch | None, together: Together) -> Solut
     def hear(progress: Progress) -> bool:  # the common variable means nothing to a reader
         return watch is not None and watch(replace(progress, breaks=None))
 
-    return rejoin(beside, _from_starts(with_sketches(beside), hear, together))
+    form = partial(in_parametric_form_by_arcs, beside)
+    return rejoin(beside, _from_starts(with_sketches(beside), hear, together, form))
 
 
-def _from_starts(problem: Problem, watch: Watch | None, together: Together) -> Solution:
+def _from_starts(
+    problem: Problem, watch: Watch | None, together: Together, form: Form = in_parametric_form
+) -> Solution:
     """Solve a problem without arcs from as many starts as are asked for, and sweep it where that is asked for."""
     began = time.perf_counter()
     deadline = in_seconds(problem.options.time_limit)
     if problem.options.starts > 1:
-        solution = solve_from_starts(problem, watch, _solve_once, _first_look(problem)[0], together)
+        solve_one = partial(_solve_once, form=form)
+        solution = solve_from_starts(problem, watch, solve_one, _first_look(problem)[0], together)
         varied = problem.sweeps or problem.continuation
-        found = _found(problem, watch, deadline) if varied else None  # variants begin at the default guess
+        found = _found(problem, watch, deadline, form) if varied else None  # variants begin at the default guess
     else:
-        found = _found(problem, watch, deadline)
+        found = _found(problem, watch, deadline, form)
         solution = _solution(problem, found, began)
     if problem.sweeps and found is not None:
-        solution = _with_sweep(solution, problem, found, watch, deadline)
+        solution = _with_sweep(solution, problem, found, watch, deadline, form)
     if problem.continuation is not None and found is not None:
         solution = _with_branch(solution, problem.continuation, found, watch, deadline)
     return solution
 
 
-def _solve_once(problem: Problem, watch: Watch | None) -> Solution:
+def _solve_once(problem: Problem, watch: Watch | None, form: Form) -> Solution:
     """Solve a problem from its one start, for its constants as they stand."""
     began = time.perf_counter()
-    return _solution(problem, _found(problem, watch, in_seconds(problem.options.time_limit)), began)
+    return _solution(problem, _found(problem, watch, in_seconds(problem.options.time_limit), form), began)
 
 
 def _with_branch(
@@ -152,32 +157,33 @@ def _with_branch(
 
 
 def _with_sweep(
-    solution: Solution, problem: Problem, found: Found, watch: Watch | None, deadline: Deadline
+    solution: Solution, problem: Problem, found: Found, watch: Watch | None, deadline: Deadline, form: Form
 ) -> Solution:
     """The solution with the points of the sweep."""
     began = time.perf_counter()
     tools = Tools(
-        alone=lambda other, room: _found(other, None, room),
+        alone=lambda other, room: _found(other, None, room, form),
         judge=lambda other, at, drawn, known: _solution(
             other, at, time.perf_counter(), brief=True, drawn=drawn, known=known
         ),
         fits=lambda other, at: (
             at.gauged is None or not at.gauged.squared or _rightly_squared(at.gauged, at.pursuit, not one_signed(other))
         ),
+        form=form,
     )
     points = sweep(problem, found, tools, watch, deadline)
     return replace(solution, sweep=points, times={**solution.times, "sweep": time.perf_counter() - began})
 
 
-def _found(problem: Problem, watch: Watch | None, deadline: Deadline) -> Found:
-    """The form in which a problem is solved, solved."""
+def _found(problem: Problem, watch: Watch | None, deadline: Deadline, form: Form) -> Found:
+    """The form in which a problem is solved, solved; `form` makes it parametric where that can be."""
     if problem.seek is Seek.STATIONARY:  # no jump can gain here, and Newton's method goes straighter in few variables
         pursuit = _in_given_form(with_slacks(problem), watch, deadline)
         if pursuit.end in (End.CONVERGED, End.STOPPED, End.TIME):
             return Found(pursuit, None)
     look = cache(lambda: _first_look(problem))
     for squared in (True, False):
-        gauged = in_parametric_form(problem, lambda: look()[0], squared)
+        gauged = form(problem, lambda: look()[0], squared)
         if gauged is None or (squared and not gauged.squared):
             continue
         doubtful = squared and not one_signed(problem)
@@ -309,8 +315,9 @@ def _solution(
     if gauged is not None:
         factor = gauged.slope(value)
         anew = tuple(check for check in made if check.name not in known)  # those taken over are told already
-        told = {check.name: check for check in checks_on_graph(gauged, shape, anew)}
-        made = tuple(told.get(check.name, check) for check in made)
+        if gauged.graph:
+            told = {check.name: check for check in checks_on_graph(gauged, shape, anew)}
+            made = tuple(told.get(check.name, check) for check in made)
         bought = prices_of_original(bought, factor)
         depends = tuple(replace(slope, slope=factor * slope.slope) for slope in depends)
         if drawn:
@@ -350,7 +357,7 @@ def _switches(pursuit: Pursuit, gauged: Gauged | None) -> tuple[SwitchPlace, ...
     path = pursuit.paths[-1]
     found = present_switches(path)
     places = np.array([switch.place for switch in found])
-    if gauged is not None and found:
+    if gauged is not None and gauged.graph and found:
         places = curve(path).evaluate(gauged.original.independent, places)
     return tuple(SwitchPlace(float(place), switch.of) for place, switch in zip(places, found, strict=True))
 
@@ -391,8 +398,7 @@ def _notes(problem: Problem, pursuit: Pursuit, gauged: Gauged | None) -> list[st
     """What was done to the problem that its reader should know."""
     notes = []
     if gauged is not None:
-        speed = "in which the cost grows evenly" if gauged.squared else "at constant speed"
-        notes.append(f"The integrand grows linearly with the slope: the curve was found in parametric form, {speed}.")
+        notes.append(gauged.note)
     if len(pursuit.problem.unknowns) > len(problem.unknowns) and gauged is None:
         notes.append("abs, max or min in the integrand: written exactly, with auxiliary unknowns that bound them.")
     rounded = sorted(rounded_functions(pursuit.problem))

@@ -30,7 +30,8 @@ def check(problem: Problem) -> None:
         told: dict[tuple[str, str], Complaint] = {}
         for complaint in refused.complaints:
             place = beside.parted(complaint.pointer)[0]
-            told.setdefault((place, complaint.code), replace(complaint, pointer=place))
+            message, hint = beside.told(complaint.message), beside.told(complaint.hint)
+            told.setdefault((place, complaint.code), replace(complaint, pointer=place, message=message, hint=hint))
         raise Refused(refused.stage, told.values()) from None
 
 
@@ -108,7 +109,7 @@ def _floating_values(problem: Problem, structure: Structure) -> Iterator[Complai
             if value is None:
                 continue
             shown = value[0] + "'" * value[1]
-            message = f"At {_label(problem, node)} alone, {shown} is free: a single value of it changes nothing else."
+            message = f"“{shown}({_label(problem, node)})” is a single value of what is free: it changes nothing else."
             hint = f"Leave this out, or let {shown}' appear in integrand or constraints so that {shown} is continuous."
             yield Complaint(pointer, None, "free-derivative", message, hint)
             return

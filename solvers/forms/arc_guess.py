@@ -37,6 +37,8 @@ def with_sketches(beside: Beside) -> Problem:
     guesses: dict[str, tuple[tuple[float, float], ...]] = {}
     drawn = set()
     for piece in beside.pieces:
+        ends = places[piece.place : piece.place + 2].tolist()
+        guesses[piece.own(original.independent)] = ((0.0, ends[0]), (1.0, ends[1]))
         for unknown in original.arcs[piece.arc].unknowns:
             for order, row in enumerate(_rows(original, piece, unknown, places, known, numbers)):
                 copy = piece.own(primed((unknown.name, order)))

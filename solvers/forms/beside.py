@@ -12,7 +12,7 @@ for the conditions at junctions that follow (from memory).
 from __future__ import annotations
 
 import re
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass, replace
 from graphlib import TopologicalSorter
 from itertools import pairwise
@@ -60,17 +60,33 @@ class Beside:
                 return head + tail, piece
         return text, None
 
+    def with_sides(self, text: str) -> str:
+        """A text with the ends of copies as sides of places: `x on burn(end)` is x(t1-)."""
+        last = len(self.original.places) - 1
+        for piece in self.pieces:
+            for end, place, side in (("(start)", piece.place, "+"), ("(end)", piece.place + 1, "-")):
+                label = self.original.places[place].label + (side if 0 < place < last else "")
+                text = text.replace(f"{ON}{piece.label}{end}", f"({label})")
+        return text
 
-def side_by_side(problem: Problem) -> Beside:
-    """The equivalent problem of a problem with arcs."""
+    def told(self, text: str) -> str:
+        """A text about copies as one about what they are copies of."""
+        text = self.with_sides(text)
+        while (shorter := self.parted(text)[0]) != text:
+            text = shorter
+        return text
+
+
+def side_by_side(problem: Problem, copied: Callable[[Problem, Piece], Copy] | None = None) -> Beside:
+    """The equivalent problem of a problem with arcs; `copied` makes the copy on a piece where it is of another kind."""
     pieces = tuple(_pieces(problem))
-    copies = tuple(_Copy(problem, piece) for piece in pieces)
+    copies = tuple((copied or Copy)(problem, piece) for piece in pieces)
     whole = _Whole(problem, copies)
     integrals = [replace(c, body=whole.tree(c.body)) for c in problem.integrals]
     for index, arc in enumerate(problem.arcs):
         own = _Whole(problem, copies, index)
         integrals += [replace(c, body=own.tree(c.body)) for c in arc.integrals]
-    costs = [copy.over_arc(arc.integrand) for copy in copies if (arc := problem.arcs[copy.piece.arc]).integrand]
+    costs = [copy.over_arc(integrand) for copy in copies if (integrand := problem.arcs[copy.piece.arc].integrand)]
     placed = [replace(c, body=whole.tree(c.body)) for c in problem.endpoints]
     equivalent = replace(
         problem,
@@ -81,7 +97,12 @@ def side_by_side(problem: Problem) -> Beside:
         endpoint=None if problem.endpoint is None else whole.tree(problem.endpoint),
         where=tuple(entry for copy in copies for entry in copy.where()),
         dynamics=tuple(line for copy in copies for line in copy.dynamics()),
-        endpoints=(*_links(problem, pieces), *_lengths(problem), *placed),
+        endpoints=(
+            *_links(problem, pieces),
+            *_lengths(problem),
+            *placed,
+            *(c for copy in copies for c in copy.endpoints()),
+        ),
         constraints=tuple(condition for copy in copies for condition in copy.constraints()),
         integrals=tuple(integrals),
         arcs=(),
@@ -104,28 +125,32 @@ def _pieces(problem: Problem) -> Iterator[Piece]:
             yield Piece(label, index, place, lowered)
 
 
-class _Copy:
-    """The formulas of one piece in its copies of the unknowns."""
+class Copy:
+    """The formulas of one piece in its copies of the unknowns, as functions of the common variable."""
 
     def __init__(self, problem: Problem, piece: Piece) -> None:
         self.piece = piece
         self.length = length_of(problem, piece.place)
+        self.arc: Arc = problem.arcs[piece.arc]
         self._independent = problem.independent
         self._start = problem.places[piece.place].tree
-        self._arc: Arc = problem.arcs[piece.arc]
-        self._abbreviations = {name for name, _ in self._arc.where}
-        self._names = {unknown.name for unknown in self._arc.unknowns}
+        self._abbreviations = {name for name, _ in self.arc.where}
+        self._names = {unknown.name for unknown in self.arc.unknowns}
 
     def tree(self, tree: Node) -> Node:
         """A formula that holds along the arc."""
         if not isinstance(tree, Name):
             return with_children(tree, tuple(self.tree(part) for part in children(tree)))
         if tree.name == self._independent:
-            way = Product((self.length, Name(FRACTION)), (False, False))
-            return way if self._start == START else Sum((self._start, way), (False, False))
+            return self.here()
         if tree.name in self._names or tree.name in self._abbreviations:
             return self.quantity(tree.name, tree.order)
         return tree
+
+    def here(self) -> Node:
+        """Where on the user's variable a value of the common one is."""
+        way = Product((self.length, Name(FRACTION)), (False, False))
+        return way if self._start == START else Sum((self._start, way), (False, False))
 
     def quantity(self, name: str, order: int) -> Name:
         """The copy of a derivative of an unknown, or of an abbreviation."""
@@ -138,7 +163,7 @@ class _Copy:
     def unknowns(self) -> Iterator[Unknown]:
         """The copies of what is a state or free on the piece."""
         lowered = self.piece.lowered
-        of = {unknown.name: unknown for unknown in self._arc.unknowns}
+        of = {unknown.name: unknown for unknown in self.arc.unknowns}
         for quantities, order in ((lowered.states, 1), (lowered.controls, 0)):
             for name, derivative in quantities:
                 copy = Unknown(self.quantity(name, derivative).name, order)
@@ -148,7 +173,7 @@ class _Copy:
 
     def where(self) -> tuple[tuple[str, Node], ...]:
         """Abbreviations, and the highest derivatives that the dynamics give; each uses only earlier ones."""
-        entries = {self.quantity(name, 0).name: self.tree(tree) for name, tree in self._arc.where}
+        entries = {self.quantity(name, 0).name: self.tree(tree) for name, tree in self.arc.where}
         entries |= {self.quantity(*q).name: self.tree(tree) for q, tree in self.piece.lowered.given.items()}
         uses = {
             name: {node.name for node in walk(tree) if isinstance(node, Name)} & entries.keys()
@@ -158,7 +183,7 @@ class _Copy:
 
     def dynamics(self) -> Iterator[Equation]:
         """The rates of the states in s, and the lines that determine nothing by themselves."""
-        explicit = {line.determines: line for line in self._arc.dynamics}
+        explicit = {line.determines: line for line in self.arc.dynamics}
         for name, order in self.piece.lowered.states:
             state = self.quantity(name, order).name
             rate = Product((self.length, self.quantity(name, order + 1)), (False, False))
@@ -170,14 +195,18 @@ class _Copy:
 
     def constraints(self) -> Iterator[Condition]:
         """What holds everywhere on the piece."""
-        for condition in self._arc.constraints:
+        for condition in self.arc.constraints:
             yield replace(condition, body=self.tree(condition.body), label=self.piece.own(condition.label))
+
+    def endpoints(self) -> Iterator[Condition]:
+        """What holds at the ends of the piece besides."""
+        return iter(())
 
 
 class _Whole:
     """Formulas of values at places and of integrals: over all arcs, or over one."""
 
-    def __init__(self, problem: Problem, copies: tuple[_Copy, ...], arc: int | None = None) -> None:
+    def __init__(self, problem: Problem, copies: tuple[Copy, ...], arc: int | None = None) -> None:
         self._places = problem.places
         self._copies = copies
         self._over = [copy for copy in copies if arc is None or copy.piece.arc == arc]

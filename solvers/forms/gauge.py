@@ -2,7 +2,8 @@
 
 An integrand such as y*sqrt(1 + y'^2) grows only linearly with the slope: a jump costs finitely much, a vertical tangent
 is allowed, and a polynomial y(x) can neither follow it nor be trusted near it.  Written in a parameter s with x(s) and
-y(s) the integral is the same for every parametrisation, and one may choose the speed:
+y(s) the integral is the same for every parametrisation, and one may choose the speed; the same where it is so from the
+beginning, as for sqrt(x'^2 + y'^2):
 
 * where nothing but the integral is minimised, its square is minimised instead: by the inequality of Cauchy and Schwarz
   the least integral of f^2 over s from 0 to 1 is the square of the least integral of f, at constant f.  The curve comes
@@ -17,10 +18,11 @@ Theory, section 12 (energy and length).  (Both from memory.)
 from __future__ import annotations
 
 import math
-from collections.abc import Callable
+from collections.abc import Callable, Iterator, Mapping
+from contextlib import suppress
 from dataclasses import dataclass, replace
-from fractions import Fraction
 
+from solvers.forms.homogeneous import Homogeneous, OtherGrowthError
 from solvers.formula.evaluate import REAL, evaluate
 from solvers.formula.nodes import (
     At,
@@ -45,15 +47,42 @@ PARAMETER = "path fraction"
 SPEED = "path speed"
 
 ZERO, ONE = Number(0.0, "0"), Number(1.0, "1")
+TWO = Number(2.0, "2")
+
+EVENLY, STEADILY = "in which the cost grows evenly", "at constant speed"
+GROWS = "The integrand grows linearly with the slope: the curve was found in parametric form, {}."
+INVARIANT = "The integral is the same for every parametrisation: the curve is told in the one {}."
+
+Sizes = Callable[[], Mapping[str, float]]
+"""Finds typical sizes of the independent variable and of the unknowns."""
+
+
+@dataclass(frozen=True, slots=True)
+class Way:
+    """A part of the curve along which the independent variable is an unknown too: what it and the others are called."""
+
+    x: str
+    unknowns: tuple[str, ...]
 
 
 @dataclass(frozen=True, slots=True)
 class Gauged:
-    """A problem in parametric form; `squared` says that its value is the square of the original's."""
+    """A problem in parametric form; `squared` says that its value is the square of the original's.
+
+    `roots` are the integrands whose squares are minimised then.  `note` says what was done.
+    """
 
     original: Problem
     problem: Problem
     squared: bool
+    roots: tuple[Node, ...]
+    ways: tuple[Way, ...]
+    note: str
+
+    @property
+    def graph(self) -> bool:
+        """Whether the curve is found as x(s) and y(s), and wanted as y(x)."""
+        return [way.x for way in self.ways] == [self.original.independent]
 
     def value(self, found: float) -> float:
         """The original's value for one of the parametric form."""
@@ -66,30 +95,105 @@ class Gauged:
         return 1 / (2 * self.value(found)) if self.squared else 1.0
 
 
-def in_parametric_form(problem: Problem, sizes: Callable[[], dict[str, float]], squared: bool) -> Gauged | None:
+Form = Callable[[Problem, Sizes, bool], Gauged | None]
+"""A problem in parametric form, or None where that does not apply; True asks for the first of the two gauges, which is
+granted where it is right."""
+
+
+def in_parametric_form(problem: Problem, sizes: Sizes, squared: bool) -> Gauged | None:
     """The problem in parametric form, or None where that does not apply.
 
     It applies to pure variational problems of first order whose integrand grows linearly with the derivatives and that
-    name no place between the ends.  `sizes` finds typical sizes of the independent variable and of the unknowns;
-    `squared` asks for the first of the two gauges, which is granted where it is right.
+    name no place between the ends.
     """
     if problem.integrand is None or problem.dynamics or problem.observations or len(problem.places) != 2:
         return None
-    names = {unknown.name for unknown in problem.unknowns}
+    names = tuple(unknown.name for unknown in problem.unknowns)
     if any(unknown.order != 1 for unknown in problem.unknowns) or not names:
         return None
-    form = _Homogeneous(problem.independent, names, dict(problem.where))
+    form = Homogeneous(problem.independent, set(names), dict(problem.where))
+    integrals = list(integrals_of(problem))
+    squared = squared and problem.seek is not Seek.STATIONARY and problem.endpoint is None and not integrals
+    if len(names) > 1 and _given(problem) and is_invariant(problem, form, (problem.integrand, *integrals)):
+        return _with_speed(problem, form, sizes, squared)
     try:
-        integrand, degree = form.of(problem.integrand)
-        degrees = [degree, *(form.of(node.arguments[0])[1] for c in problem.integrals for node in walk(c.body)
-                             if isinstance(node, Call) and node.function == "integral")]  # fmt: skip
-    except _OtherGrowthError:
+        degrees = [form.of(body)[1] for body in (problem.integrand, *integrals)]
+    except OtherGrowthError:
         return None
-    if max(degrees) != 1:
-        return None
-    integrand = form.raised(integrand, 1 - degree)
-    squared = squared and problem.seek is not Seek.STATIONARY and problem.endpoint is None and not problem.integrals
+    return _upright(problem, form, sizes, squared) if max(degrees) == 1 else None
+
+
+def integrals_of(problem: Problem) -> Iterator[Node]:
+    """What is integrated in the conditions and in the endpoint term."""
+    trees = [c.body for c in problem.integrals] + ([] if problem.endpoint is None else [problem.endpoint])
+    for node in (node for tree in trees for node in walk(tree)):
+        if isinstance(node, Call) and node.function == "integral":
+            yield node.arguments[0]
+
+
+def is_invariant(problem: Problem, form: Homogeneous, integrands: tuple[Node, ...]) -> bool:
+    """Whether integrals and constraints are the same for every parametrisation already."""
+    return all(form.invariant(body, 1) for body in integrands) and all(
+        form.invariant(condition.body, 0) for condition in problem.constraints
+    )
+
+
+def constant_speed(rates: list[tuple[Name, float]], speed: str, label: str) -> Condition:
+    """The sum of the squares of rates, each over its size, is the square of a parameter."""
+    squares = [Power(Product((rate, Number(size, "")), (False, True)), TWO) for rate, size in rates]
+    body = Sum((*squares, Power(Name(speed), TWO)), (*[False] * len(squares), True))
+    return Condition(body, ZERO, ZERO, label, "")
+
+
+def at_rest(names: tuple[str, ...], place: Node) -> Iterator[Condition]:
+    """What holds where the integrand is infinite and its square is minimised."""
+    for name in names:
+        yield Condition(At(name, 1, place), ZERO, ZERO, f"{name} starts or ends at rest", "")
+
+
+def root_of(integrand: Node, problem: Problem) -> Node:
+    """What is squared in place of an integrand: where a maximum is sought its opposite."""
+    return Negative(integrand) if problem.seek is Seek.MAXIMUM else integrand
+
+
+def _given(problem: Problem) -> bool:
+    """Whether both ends are given: where one is free, the curve does not say where."""
+    free = {parameter.name for parameter in problem.parameters}
+    return not any(isinstance(place.tree, Name) and place.tree.name in free for place in problem.places)
+
+
+def _with_speed(problem: Problem, form: Homogeneous, sizes: Sizes, squared: bool) -> Gauged:
+    """A problem that is the same for every parametrisation, with one of them fixed."""
+    assert problem.integrand is not None
+    names = tuple(sorted(unknown.name for unknown in problem.unknowns))
+    note = INVARIANT.format(EVENLY if squared else STEADILY)
+    if squared:
+        length = Sum((problem.places[1].tree, problem.places[0].tree), (False, True))
+        root = root_of(problem.integrand, problem)
+        integrand = Product((length, Power(root, TWO)), (False, False))
+        rest = [c for place in problem.places if infinite(problem, place) for c in at_rest(names, place.tree)]
+        endpoints = (*problem.endpoints, *rest)
+        changed = replace(problem, seek=Seek.MINIMUM, integrand=integrand, endpoints=endpoints)
+        return Gauged(problem, changed, squared, (root,), (), note)
+    size = sizes()
+    span = size[problem.independent]
+    gauge = constant_speed([(Name(name, 1), size[name] / span) for name in names], SPEED, "constant speed")
+    changed = replace(
+        problem,
+        parameters=(*problem.parameters, Parameter(SPEED, 0.0, guess=2.0)),
+        constraints=(*problem.constraints, gauge),
+    )
+    return Gauged(problem, changed, squared, (), (), note)
+
+
+def _upright(problem: Problem, form: Homogeneous, sizes: Sizes, squared: bool) -> Gauged:
+    """The problem with x(s) as an unknown, so that the curve may stand upright."""
+    assert problem.integrand is not None
+    homogeneous, degree = form.of(problem.integrand)
+    integrand = form.raised(homogeneous, 1 - degree)
+    integrand = root_of(integrand, problem) if squared else integrand
     x = problem.independent
+    names = (x, *sorted(unknown.name for unknown in problem.unknowns))
     unknowns = [
         Unknown(x, 1, unit=problem.independent_unit, guess=_straight(problem)),
         *(replace(u, guess=_along(u, problem)) for u in problem.unknowns),
@@ -98,131 +202,49 @@ def in_parametric_form(problem: Problem, sizes: Callable[[], dict[str, float]], 
     constraints.append(Condition(Name(x, 1), ZERO, None, f"{x} runs forward", ""))
     parameters = list(problem.parameters)
     if not squared:
-        two, size = Number(2.0, "2"), sizes()
-        squares = [
-            Power(Product((Name(name, 1), Number(size[name], "")), (False, True)), two) for name in (x, *sorted(names))
-        ]
-        body = Sum((*squares, Power(Name(SPEED), two)), (*[False] * len(squares), True))
-        constraints.append(Condition(body, ZERO, ZERO, "constant speed along the curve", ""))
+        size = sizes()
+        rates = [(Name(name, 1), size[name]) for name in names]
+        constraints.append(constant_speed(rates, SPEED, "constant speed along the curve"))
         parameters.append(Parameter(SPEED, 0.0, guess=2.0))
     endpoints = [replace(c, body=_moved(c.body, problem)) for c in problem.endpoints]
     for place, at in zip(problem.places, (ZERO, ONE), strict=True):
-        here = At(x, 0, at)
-        if isinstance(place.tree, Name) and place.tree.name in {p.name for p in parameters}:
-            endpoints.append(Condition(Sum((here, place.tree), (False, True)), ZERO, ZERO, place.label, ""))
-        else:
-            endpoints.append(Condition(here, place.tree, place.tree, place.label, ""))
+        endpoints.append(tied(x, at, place, problem))
     if squared:
-        integrand = Negative(integrand) if problem.seek is Seek.MAXIMUM else integrand
-        endpoints += [Condition(At(name, 1, at), ZERO, ZERO, f"{name} starts or ends at rest", "")
-                      for at, place in zip((ZERO, ONE), problem.places, strict=True) if _infinite(problem, place)
-                      for name in (x, *sorted(names))]  # fmt: skip
-    integrals = [replace(c, body=form.integrals(_moved(c.body, problem))) for c in problem.integrals]
-    endpoint = None if problem.endpoint is None else form.integrals(_moved(problem.endpoint, problem))
+        endpoints += [c for at, place in zip((ZERO, ONE), problem.places, strict=True) if infinite(problem, place)
+                      for c in at_rest(names, at)]  # fmt: skip
     changed = replace(
         problem,
         independent=PARAMETER,
         places=(Place(ZERO, "0"), Place(ONE, "1")),
         unknowns=tuple(unknowns),
         seek=Seek.MINIMUM if squared else problem.seek,
-        integrand=Power(integrand, Number(2.0, "2")) if squared else integrand,
-        endpoint=endpoint,
+        integrand=Power(integrand, TWO) if squared else integrand,
+        endpoint=None if problem.endpoint is None else form.integrals(_moved(problem.endpoint, problem)),
         parameters=tuple(parameters),
         where=tuple((name, form.plain(tree)) for name, tree in problem.where),
         endpoints=tuple(endpoints),
         constraints=tuple(constraints),
-        integrals=tuple(integrals),
+        integrals=tuple(replace(c, body=form.integrals(_moved(c.body, problem))) for c in problem.integrals),
     )
-    return Gauged(problem, changed, squared)
+    way = Way(x, tuple(unknown.name for unknown in problem.unknowns))
+    note = GROWS.format(EVENLY if squared else STEADILY)
+    return Gauged(problem, changed, squared, (integrand,) if squared else (), (way,), note)
 
 
-class _OtherGrowthError(Exception):
-    """A tree grows with the slope in another way than a power does."""
+def tied(x: str, at: Node, place: Place, problem: Problem) -> Condition:
+    """The condition that x is a place of the problem at an end of its parameter."""
+    here = At(x, 0, at)
+    if isinstance(place.tree, Name) and place.tree.name in {p.name for p in problem.parameters}:
+        return Condition(Sum((here, place.tree), (False, True)), ZERO, ZERO, place.label, "")
+    return Condition(here, place.tree, place.tree, place.label, "")
 
 
-class _Homogeneous:
-    """Trees in x, y(x), y'(x) rewritten in x(s), y(s), x'(s), y'(s), where y' becomes y'/x'."""
-
-    def __init__(self, independent: str, unknowns: set[str], where: dict[str, Node]) -> None:
-        self._slope = Name(independent, 1)
-        self._unknowns = unknowns
-        self._where = where
-
-    def plain(self, tree: Node) -> Node:
-        """The tree with every y' written as y'/x'."""
-        if isinstance(tree, Name) and tree.name in self._unknowns and tree.order == 1:
-            return Product((tree, self._slope), (False, True))
-        return with_children(tree, tuple(self.plain(part) for part in children(tree)))
-
-    def integrals(self, tree: Node) -> Node:
-        """The tree with every integral over x as one over s."""
-        if isinstance(tree, Call) and tree.function == "integral":
-            body, degree = self.of(tree.arguments[0])
-            return Call("integral", (self.raised(body, 1 - degree),))
-        return with_children(tree, tuple(self.integrals(part) for part in children(tree)))
-
-    def raised(self, tree: Node, power: Fraction) -> Node:
-        """The tree times a power of x'."""
-        if power == 0:
-            return tree
-        if power == 1:
-            return Product((tree, self._slope), (False, False))
-        return Product((tree, Power(self._slope, Number(float(power), str(power)))), (False, False))
-
-    def of(self, tree: Node) -> tuple[Node, Fraction]:
-        """A tree h and a degree d with h = tree * x'^d, homogeneous in (x', y') of degree d, free of 1/x'.
-
-        Raises _OtherGrowthError where there is none, as for exp(y').
-        """
-        match tree:
-            case Name(name=name, order=order) if name in self._unknowns and order == 1:
-                return tree, Fraction(1)
-            case Name(name=name) if name in self._where and self._moves(tree):
-                return self.of(self._where[name])
-            case Negative(operand=operand):
-                inner, degree = self.of(operand)
-                return Negative(inner), degree
-            case Sum(terms=terms, minus=minus):
-                parts = [self.of(term) for term in terms]
-                degree = max(d for _, d in parts)
-                return Sum(tuple(self.raised(part, degree - d) for part, d in parts), minus), degree
-            case Product(factors=factors, over=over):
-                parts = [self.of(factor) for factor in factors]
-                degree = sum((-d if below else d for (_, d), below in zip(parts, over, strict=True)), Fraction(0))
-                return Product(tuple(part for part, _ in parts), over), degree
-            case Power(base=base, exponent=exponent) if isinstance(_number(exponent), float):
-                inner, degree = self.of(base)
-                return Power(inner, exponent), degree * Fraction(str(_number(exponent))).limit_denominator(1000)
-            case Call(function="sqrt", arguments=(inside,)):
-                inner, degree = self.of(inside)
-                return Call("sqrt", (inner,)), degree / 2
-            case Call(function="abs", arguments=(inside,)):
-                inner, degree = self.of(inside)
-                return Call("abs", (inner,)), degree
-            case Call(function="hypot", arguments=sides):
-                parts = [self.of(side) for side in sides]
-                degree = max(d for _, d in parts)
-                return Call("hypot", tuple(self.raised(part, degree - d) for part, d in parts)), degree
-            case _ if self._moves(tree):
-                raise _OtherGrowthError
-            case _:
-                return tree, Fraction(0)
-
-    def _moves(self, tree: Node) -> bool:
-        """Whether a tree, its abbreviations included, holds a derivative."""
-        return any(
-            isinstance(node, Name)
-            and ((node.name in self._unknowns and node.order == 1)
-                 or (node.name in self._where and self._moves(self._where[node.name])))
-            for node in walk(tree)
-        )  # fmt: skip
-
-
-def _infinite(problem: Problem, place: Place) -> bool:
+def infinite(problem: Problem, place: Place) -> bool:
     """Whether the integrand is infinite at an end where all values are fixed, so that the curve is at rest there."""
     values = {c.name: c.value for c in problem.constants}
-    try:
+    with suppress(KeyError):  # a free place says nothing about x
         values[problem.independent] = number(place.tree, values)
+    try:
         for condition in problem.endpoints:
             body = condition.body
             if isinstance(body, At) and text(body.place) == text(place.tree) and condition.equality and condition.lower:
@@ -240,18 +262,6 @@ def _infinite(problem: Problem, place: Place) -> bool:
     except (KeyError, ValueError, OverflowError):
         return False
     return False
-
-
-def _number(tree: Node) -> float | None:
-    match tree:
-        case Number(value=value):
-            return float(value)
-        case Negative(operand=Number(value=value)):
-            return -float(value)
-        case Product(factors=(Number(value=above), Number(value=below)), over=(False, True)) if below:
-            return above / below
-        case _:
-            return None
 
 
 def _moved(tree: Node, problem: Problem) -> Node:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Iterable
 from dataclasses import replace
 from functools import partial
 
@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from solvers.curve import Curve
-from solvers.forms.gauge import Gauged
+from solvers.forms.gauge import Gauged, Way
 from solvers.forms.regraph import regraph
 from solvers.solution import Change, Check, Finding, Price
 from solvers.transcription.limits import number
@@ -28,32 +28,42 @@ STEEPEST = 1e-9
 def as_graph(
     gauged: Gauged, shape: Curve, multipliers: Curve, factor: float, changes: tuple[Change, ...] = ()
 ) -> tuple[Curve, Curve, tuple[Change, ...]]:
-    """Curve, costates and changes of the curve as functions of x.
+    """Curve, costates and changes of the curve in the original's terms: as functions of x where that was an unknown.
 
     `factor` turns costates of the gauged problem into the original's.
     """
-    x = gauged.original.independent
-    functions: dict[str, Callable[[Array], Array]] = {}
-    names = [unknown.name for unknown in gauged.original.unknowns]
-    for name in names:
-        functions[name] = partial(shape.evaluate, name)
-        functions[name + "'"] = partial(_slope, shape, x, name)
-    costates = {name: partial(_scaled, multipliers, name, factor) for name in names if name in multipliers.functions}
-    wanted = functions | {f"costate {name}": function for name, function in costates.items()}
-    for change in changes:
-        for name in names:
-            wanted[f"{change.constant} {name}"] = partial(_changed, shape, change.curve, x, name)
-    graph = regraph(shape.breaks, partial(shape.evaluate, x), wanted, names[0])
+    scaled = Curve(multipliers.breaks, {name: tuple(factor * part for part in parts)
+                                        for name, parts in multipliers.functions.items()})  # fmt: skip
+    if not gauged.graph:
+        return shape, scaled, changes
+    graph, costates, changed = along_way(gauged.ways[0], shape, scaled, changes)
     breaks = graph.breaks.copy()
     breaks[0], breaks[-1] = _end(gauged, 0, breaks[0]), _end(gauged, -1, breaks[-1])
-    return (
-        Curve(breaks, {name: graph.functions[name] for name in functions}),
-        Curve(breaks, {name: graph.functions[f"costate {name}"] for name in costates}),
-        tuple(
-            Change(c.constant, Curve(breaks, {name: graph.functions[f"{c.constant} {name}"] for name in names}))
-            for c in changes
-        ),
-    )
+    altered = tuple(replace(change, curve=replace(change.curve, breaks=breaks)) for change in changed)
+    return replace(graph, breaks=breaks), replace(costates, breaks=breaks), altered
+
+
+def along_way(
+    way: Way, shape: Curve, multipliers: Curve, changes: tuple[Change, ...]
+) -> tuple[Curve, Curve, tuple[Change, ...]]:
+    """The unknowns of a way with their slopes, their costates and their changes, all as functions of x."""
+    x = way.x
+    functions: dict[str, Callable[[Array], Array]] = {}
+    for name in way.unknowns:
+        functions[name] = partial(shape.evaluate, name)
+        functions[name + "'"] = partial(_slope, shape, x, name)
+    kept = [name for name in way.unknowns if name in multipliers.functions]
+    wanted = functions | {f"costate {name}": partial(multipliers.evaluate, name) for name in kept}
+    for change in changes:
+        for name in way.unknowns:
+            wanted[f"{change.constant} {name}"] = partial(_changed, shape, change.curve, x, name)
+    graph = regraph(shape.breaks, partial(shape.evaluate, x), wanted, way.unknowns[0])
+
+    def own(prefix: str, names: Iterable[str]) -> Curve:
+        return Curve(graph.breaks, {name: graph.functions[prefix + name] for name in names})
+
+    altered = tuple(replace(change, curve=own(f"{change.constant} ", way.unknowns)) for change in changes)
+    return own("", functions), own("costate ", kept), altered
 
 
 UPRIGHT = ((1e-6, 1e-2), (1e-3, 0.1))
@@ -62,25 +72,26 @@ relative to the extent of the unknown, of more than the second: more than a vert
 
 
 def uprights(gauged: Gauged, shape: Curve) -> tuple[Finding, ...]:
-    """The pieces along which an unknown changes while x stands still: a function of x jumps there."""
-    x = gauged.original.independent
+    """The pieces along which an unknown changes while x stands still: a function of x jumps there.
+
+    The place of a finding is that in x where the curve is told in x, else that in its parameter.
+    """
     edges = shape.breaks
     at = (edges[:-1, None] + np.diff(edges)[:, None] * MIDDLES).ravel()
     step = np.repeat(np.diff(edges), len(MIDDLES)) / len(MIDDLES)
-    forward = shape.evaluate(x + "'", at)
-    places = shape.evaluate(x, at)
-    mean = abs(float(forward @ step)) / float(step.sum())
+    advance = [shape.evaluate(way.x + "'", at) for way in gauged.ways]
+    mean = sum(abs(float(forward @ step)) for forward in advance) / float(step.sum())
     for slope, rise in UPRIGHT:
-        still = np.concatenate([[False], forward <= slope * mean, [False]])
-        pieces = list(
-            zip(np.flatnonzero(still[1:-1] & ~still[:-2]), np.flatnonzero(still[1:-1] & ~still[2:]), strict=True)
-        )
-        found = []
-        for unknown in gauged.original.unknowns:
-            values = shape.evaluate(unknown.name, at)
-            least = rise * (float(np.ptp(values)) or 1.0)
-            found += [Finding(unknown.name, "", None, float(places[first]), "jumps") for first, last in pieces
-                      if abs(values[last] - values[first]) > least]  # fmt: skip
+        found: list[Finding] = []
+        for way, forward in zip(gauged.ways, advance, strict=True):
+            still = np.concatenate([[False], forward <= slope * mean, [False]])
+            first, last = np.flatnonzero(still[1:-1] & ~still[:-2]), np.flatnonzero(still[1:-1] & ~still[2:])
+            places = shape.evaluate(way.x, at) if gauged.graph else at
+            for name in way.unknowns:
+                values = shape.evaluate(name, at)
+                least = rise * (float(np.ptp(values)) or 1.0)
+                jumps = np.abs(values[last] - values[first]) > least
+                found += [Finding(name, "", None, float(place), "jumps") for place in places[first[jumps]]]
         if found:
             return tuple(found)
     return ()
@@ -104,10 +115,6 @@ def _changed(shape: Curve, change: Curve, x: str, name: str, at: Array) -> Array
     speed = shape.evaluate(x + "'", at)
     slope = shape.evaluate(name + "'", at) / np.maximum(speed, STEEPEST * max(float(speed.max()), 1e-300))
     return np.asarray(change.evaluate(name, at) - slope * change.evaluate(x, at))
-
-
-def _scaled(curve: Curve, name: str, factor: float, at: Array) -> Array:
-    return factor * curve.evaluate(name, at)
 
 
 def checks_on_graph(gauged: Gauged, shape: Curve, checks: tuple[Check, ...]) -> tuple[Check, ...]:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator, Mapping
-from dataclasses import replace
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.polynomial import legendre
@@ -11,7 +11,9 @@ from numpy.typing import NDArray
 
 from solvers.checks import free_ends
 from solvers.curve import Curve
-from solvers.forms.beside import ON, Beside, Piece
+from solvers.forms.beside import Beside, Piece
+from solvers.forms.gauge import Way
+from solvers.forms.graph import along_way
 from solvers.solution import ArcCurve, Check, Diagnosis, Finding, Price, Solution, Status, SweepPoint, SwitchPlace
 from solvers.transcription.limits import number
 from solvers.transcription.lowering import primed
@@ -24,23 +26,42 @@ VANISHED = 1e-9
 
 def rejoin(beside: Beside, found: Solution) -> Solution:
     """The solution of the original problem from that of the equivalent one."""
-    places = _places(beside, found.parameters)
-    curves = tuple(_curves(beside, found.curve, found.costates, places))
-    notes = [*found.notes, *_notes(beside, places, curves)]
+    where = Where(beside, found.curve, _places(beside, found.parameters))
+    curves = tuple(_curves(beside, found.curve, found.costates, where.places))
+    notes = [*found.notes, *_notes(beside, curves)]
     return replace(
         found,
         curve=None,
         costates=None,
         arcs=curves,
         prices=tuple(_prices(beside, found.prices)),
-        checks=tuple(_check(beside, check, places) for check in found.checks),
-        diagnosis=None if found.diagnosis is None else _diagnosis(beside, found.diagnosis, places),
+        checks=tuple(_check(beside, check, where) for check in found.checks),
+        diagnosis=None if found.diagnosis is None else _diagnosis(beside, found.diagnosis, where),
         notes=tuple(notes),
         sweep=tuple(_point(beside, point) for point in found.sweep),
         extremals=tuple(replace(one, solution=rejoin(beside, one.solution)) for one in found.extremals),
         changes=(),
-        switches=tuple(sorted(set(_switches(beside, found, places)), key=lambda switch: switch.place)),
+        switches=tuple(sorted(set(_switches(beside, found, where)), key=lambda switch: switch.place)),
     )
+
+
+@dataclass(frozen=True, slots=True)
+class Where:
+    """Where in t a place of the common variable is on a piece; `places` are those of the problem."""
+
+    beside: Beside
+    curve: Curve | None
+    places: Array
+
+    def at(self, piece: Piece | None, place: float | None) -> float | None:
+        """None where it is on no arc, or where t was not found."""
+        if piece is None or place is None:
+            return None
+        own = piece.own(self.beside.original.independent)
+        if self.curve is not None and own in self.curve.functions:
+            return float(self.curve.evaluate(own, np.array([place]))[0])
+        start, end = self.places[piece.place], self.places[piece.place + 1]
+        return float(start + (end - start) * place) if np.isfinite(start + end) else None
 
 
 def _point(beside: Beside, point: SweepPoint) -> SweepPoint:
@@ -68,19 +89,45 @@ def _curves(beside: Beside, curve: Curve | None, along: Curve | None, places: Ar
         return
     span = places[-1] - places[0]
     for index, arc in enumerate(beside.original.arcs):
-        curves, costates = [], []
+        told = []
         for piece in beside.pieces:
-            start, length = places[piece.place], places[piece.place + 1] - places[piece.place]
-            if piece.arc != index or length <= VANISHED * span:
+            start, end = places[piece.place], places[piece.place + 1]
+            if piece.arc != index or end - start <= VANISHED * span:
                 continue
-            curves.append(_moved(curve, _functions(beside, piece, curve, length), start, length))
-            if along is not None:
-                costates.append(_moved(along, _multipliers(beside, piece, along, length), start, length))
-        if curves:
-            yield ArcCurve(arc.name, _joined(curves), _joined(costates) if costates else None)
+            one = _upright if piece.own(beside.original.independent) in curve.functions else _stretched
+            told.append(one(beside, piece, curve, along, start, end))
+        if told:
+            costates = [part for _, part in told if part is not None]
+            yield ArcCurve(arc.name, _joined([part for part, _ in told]), _joined(costates) if costates else None)
 
 
 Functions = dict[str, tuple[Array, ...]]
+
+
+def _upright(
+    beside: Beside, piece: Piece, curve: Curve, along: Curve | None, start: float, end: float
+) -> tuple[Curve, Curve | None]:
+    """A piece that was found in parametric form, and its costates."""
+    names = {piece.own(unknown.name): unknown.name for unknown in beside.original.arcs[piece.arc].unknowns}
+    way = Way(piece.own(beside.original.independent), tuple(names))
+    shape, costates, _ = along_way(way, curve, along or Curve(curve.breaks, {}), ())
+    breaks = np.concatenate([[start], shape.breaks[1:-1], [end]])
+    names |= {f"{own}'": f"{name}'" for own, name in names.items()}
+
+    def renamed(part: Curve) -> Curve:
+        return Curve(breaks, {names[own]: modes for own, modes in part.functions.items()})
+
+    return renamed(shape), None if along is None else renamed(costates)
+
+
+def _stretched(
+    beside: Beside, piece: Piece, curve: Curve, along: Curve | None, start: float, end: float
+) -> tuple[Curve, Curve | None]:
+    """A piece along which t runs evenly with the common variable, and its costates."""
+    length = end - start
+    breaks = np.append(start + length * curve.breaks[:-1], end)
+    costates = None if along is None else Curve(breaks, _multipliers(beside, piece, along, length))
+    return Curve(breaks, _functions(beside, piece, curve, length)), costates
 
 
 def _functions(beside: Beside, piece: Piece, curve: Curve, length: float) -> Functions:
@@ -90,14 +137,15 @@ def _functions(beside: Beside, piece: Piece, curve: Curve, length: float) -> Fun
     for unknown in beside.original.arcs[piece.arc].unknowns:
         for order in range(unknown.order + 1):
             quantity = (unknown.name, order)
-            if quantity in piece.lowered.given:
+            own = piece.own(primed(quantity))
+            if quantity in piece.lowered.given or own not in curve.functions:  # not known better than by the function
                 below = functions[primed((unknown.name, order - 1))]
                 functions[primed(quantity)] = tuple(
                     np.asarray(legendre.legder(part) * (2 / width), dtype=float)
                     for part, width in zip(below, widths, strict=True)
                 )
             else:
-                functions[primed(quantity)] = curve.functions[piece.own(primed(quantity))]
+                functions[primed(quantity)] = curve.functions[own]
     return functions
 
 
@@ -110,10 +158,6 @@ def _multipliers(beside: Beside, piece: Piece, costates: Curve, length: float) -
         if of == piece:
             functions[name] = parts if name in states else tuple(part / length for part in parts)
     return functions
-
-
-def _moved(curve: Curve, functions: Functions, start: float, length: float) -> Curve:
-    return Curve(np.append(start + length * curve.breaks[:-1], start + length), functions)
 
 
 def _joined(curves: list[Curve]) -> Curve:
@@ -140,55 +184,37 @@ def _prices(beside: Beside, prices: Iterable[Price]) -> Iterator[Price]:
     yield from (Price(label, pointer, worth) for (label, pointer), worth in total.items())
 
 
-def _at(piece: Piece | None, place: float | None, places: Array) -> float | None:
-    """A place of the common variable in t; None where it is on no arc, or where t was not found."""
-    if piece is None or place is None:
-        return None
-    start, end = places[piece.place], places[piece.place + 1]
-    return float(start + (end - start) * place) if np.isfinite(start + end) else None
-
-
-def _check(beside: Beside, check: Check, places: Array) -> Check:
+def _check(beside: Beside, check: Check, where: Where) -> Check:
     _, piece = beside.parted(check.subject)
-    sentence = _told(beside, check.sentence)
+    sentence = beside.with_sides(check.sentence)
     if check.name == free_ends.NAME and check.status is Status.PASSED:
         sentence += " At junctions the costates jump by the prices of what is asked there, and no more; the Hamiltonian"
         sentence += " is continuous where the place is free."
     return replace(
-        check, place=_at(piece, check.place, places), subject=_told(beside, check.subject), sentence=sentence
+        check, place=where.at(piece, check.place), subject=beside.with_sides(check.subject), sentence=sentence
     )
 
 
-def _told(beside: Beside, text: str) -> str:
-    """A text with the ends of copies as sides of places: `x on burn(end)` is x(t1-)."""
-    last = len(beside.original.places) - 1
-    for piece in beside.pieces:
-        for end, place, side in (("(start)", piece.place, "+"), ("(end)", piece.place + 1, "-")):
-            label = beside.original.places[place].label + (side if 0 < place < last else "")
-            text = text.replace(f"{ON}{piece.label}{end}", f"({label})")
-    return text
-
-
-def _switches(beside: Beside, found: Solution, places: Array) -> Iterator[SwitchPlace]:
+def _switches(beside: Beside, found: Solution, where: Where) -> Iterator[SwitchPlace]:
     for switch in found.switches:
         for name, piece in map(beside.parted, switch.of):
-            at = _at(piece, switch.place, places)
+            at = where.at(piece, switch.place)
             if at is not None:
                 yield SwitchPlace(at, frozenset({name}))
 
 
-def _diagnosis(beside: Beside, diagnosis: Diagnosis, places: Array) -> Diagnosis:
-    return replace(diagnosis, findings=tuple(_finding(beside, finding, places) for finding in diagnosis.findings))
+def _diagnosis(beside: Beside, diagnosis: Diagnosis, where: Where) -> Diagnosis:
+    return replace(diagnosis, findings=tuple(_finding(beside, finding, where) for finding in diagnosis.findings))
 
 
-def _finding(beside: Beside, finding: Finding, places: Array) -> Finding:
+def _finding(beside: Beside, finding: Finding, where: Where) -> Finding:
     label, piece = beside.parted(finding.label)
     pointer, _ = beside.parted(finding.pointer)
     note = finding.note if piece is None else f"{finding.note} on {piece.label}".strip()
-    return replace(finding, label=label, pointer=pointer, place=_at(piece, finding.place, places), note=note)
+    return replace(finding, label=label, pointer=pointer, place=where.at(piece, finding.place), note=note)
 
 
-def _notes(beside: Beside, places: Array, curves: tuple[ArcCurve, ...]) -> Iterator[str]:
+def _notes(beside: Beside, curves: tuple[ArcCurve, ...]) -> Iterator[str]:
     """How the arcs were treated, and which of them vanished."""
     problem = beside.original
     orders = [c.label for c in beside.problem.endpoints if not c.pointer and not c.equality]

@@ -16,7 +16,7 @@ from solvers.checks.convexity import known, unfolding
 from solvers.curve import Curve
 from solvers.forms.gauge import Gauged
 from solvers.formula.evaluate import evaluate
-from solvers.formula.nodes import Node, Power
+from solvers.formula.nodes import Node
 from solvers.problem import Problem, Seek
 from solvers.starts.sketch import ARRAYS
 from solvers.transcription.limits import number
@@ -54,11 +54,10 @@ def positive(values: Array) -> bool:
 
 def positive_along(gauged: Gauged, path: Trajectory) -> bool:
     """Whether the integrand whose square was minimised is positive along the curve."""
-    squared, shape = gauged.problem.integrand, curve(path)
-    assert gauged.squared and isinstance(squared, Power)
+    shape = curve(path)
     places = (shape.breaks[:-1, None] + np.diff(shape.breaks)[:, None] * MIDDLES).ravel()
     with np.errstate(all="ignore"):
-        return positive(np.asarray(_along(squared.base, gauged.problem, shape, path, places)))
+        return all(positive(_along(root, gauged.problem, shape, path, places)) for root in gauged.roots)
 
 
 def _along(tree: Node, problem: Problem, shape: Curve, path: Trajectory, places: Array) -> Array:

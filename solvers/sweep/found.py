@@ -6,7 +6,7 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 
 from solvers.deadline import Deadline
-from solvers.forms.gauge import Gauged
+from solvers.forms.gauge import Form, Gauged
 from solvers.problem import Problem
 from solvers.search.record import Pursuit
 from solvers.solution import Check, Solution
@@ -28,3 +28,4 @@ class Tools:
     judge: Callable[[Problem, Found, bool, Mapping[str, Check]], Solution]
     """With the curve where it is True, and with the checks that need not be made."""
     fits: Callable[[Problem, Found], bool]  # whether a point's form says the same as its problem
+    form: Form  # the parametric one

@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from solvers.deadline import Deadline
-from solvers.forms.gauge import Gauged, in_parametric_form
+from solvers.forms.gauge import Form, Gauged
 from solvers.problem import Problem
 from solvers.search.structure import present_switches
 from solvers.sweep.found import Found, Tools
@@ -61,7 +61,7 @@ class Stepper:
         long as there is `room`.
         """
         problem, own = self.stated(at), near.found
-        gauged = _gauged(problem, own)
+        gauged = _gauged(problem, own, self.tools.form)
         if own.gauged is not None and gauged is None:
             return
         reached = self.neighbours.step(problem, at, near.solved, far.solved if far else None)
@@ -86,13 +86,13 @@ class Stepper:
             yield step
 
 
-def _gauged(problem: Problem, neighbour: Found) -> Gauged | None:
+def _gauged(problem: Problem, neighbour: Found, form: Form) -> Gauged | None:
     """The parametric form of a point in the terms of its neighbour's; None where it is another one."""
-    if neighbour.gauged is None:
+    known = neighbour.gauged
+    if known is None:
         return None
-    form = neighbour.gauged.problem
-    if neighbour.gauged.squared:  # ends at rest depend on the values of constants
-        own = in_parametric_form(problem, dict, True)
-        if own is None or len(own.problem.endpoints) != len(form.endpoints):
+    if known.squared:  # ends at rest depend on the values of constants
+        own = form(problem, dict, True)
+        if own is None or len(own.problem.endpoints) != len(known.problem.endpoints):
             return None
-    return Gauged(problem, replace(form, constants=problem.constants), neighbour.gauged.squared)
+    return replace(known, original=problem, problem=replace(known.problem, constants=problem.constants))

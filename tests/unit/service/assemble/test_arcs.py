@@ -119,4 +119,11 @@ def test_complaints_speak_of_the_document_and_not_of_the_equivalent_problem():
         stated(unknowns={"x": {"within": [None, 0.5]}, "u": {}})
     (complaint,) = refusal.value.complaints
     assert (complaint.pointer, complaint.code) == ("/unknowns/x/within", "excluded")
-    assert complaint.message == "By “x(1) = 1”, x on two(end) is 1: outside of the bounds -inf to 0.5."
+    assert complaint.message == "By “x(1) = 1”, x(1) is 1: outside of the bounds -inf to 0.5."
+
+
+def test_hints_name_no_copies_either():
+    with pytest.raises(Refused) as refusal:
+        stated(endpoints=["x(0) = 0", "u(0.5-) = 2*u(0.5+)"])
+    for complaint in refusal.value.complaints:
+        assert " on " not in complaint.message + complaint.hint

@@ -9,6 +9,8 @@ from solvers.formula.evaluate import REAL, evaluate
 from solvers.formula.nodes import At, Call, Name, walk
 from solvers.problem import Seek
 from solvers.search.pursuit import pursue
+from solvers.solution import Verdict
+from solvers.solve import solve
 from solvers.transcription.mesh import uniform
 from tests.unit.solvers.problems import shape, solved_on
 
@@ -123,6 +125,55 @@ def test_the_greatest_of_a_negative_integrand_is_the_least_of_its_opposite():
     assert gauged.problem.seek is Seek.MINIMUM
     assert gauged.value(4.0) == -2.0
     assert gauged.slope(4.0) == -0.25
+
+
+@pytest.mark.parametrize(
+    ("integrand", "members"),
+    [
+        ("sqrt(y'^2 + z'^2)", {}),
+        ("(1 + y^2)*sqrt(y'^2 + z'^2)", {"constraints": ["y^2 + z^2 >= 0.04"]}),
+        ("z*hypot(y', z')", {"where": {"r": "sqrt(y^2 + z^2)"}, "constraints": ["r <= 5"]}),
+        ("(y*z' - z*y')/2", {"constraints": ["integral(sqrt(y'^2 + z'^2)) = 2"]}),
+    ],
+)
+def test_what_is_the_same_for_every_parametrisation_only_gets_a_speed(integrand, members):
+    problem = flat(integrand, **members)
+    for squared in (True, False):
+        gauged = in_parametric_form(problem, lambda: SIZES, squared)
+        assert gauged.ways == ()
+        assert not gauged.graph
+        assert gauged.problem.independent == "x"
+        assert gauged.problem.unknowns == problem.unknowns
+        assert "the same for every parametrisation" in gauged.note
+
+
+@pytest.mark.parametrize(
+    ("integrand", "members"),
+    [
+        ("sqrt(y'^2 + z'^2)", {"constraints": ["y + x >= 0"]}),
+        ("sqrt(y'^2 + z'^2)", {"constraints": ["integral(y) <= 9"]}),
+        ("x*sqrt(y'^2 + z'^2)", {}),
+        ("sqrt(y'^2 + z'^2) + z", {}),
+        ("abs(y')", {}),
+    ],
+    ids=("x in a constraint", "another integral", "x in the integrand", "a term of degree 0", "one unknown"),
+)
+def test_what_is_not_has_x_as_an_unknown(integrand, members):
+    gauged = in_parametric_form(flat(integrand, **members), lambda: SIZES, squared=False)
+    assert [way.x for way in gauged.ways] == ["x"]
+
+
+@pytest.mark.parametrize("length", [False, True], ids=["squared", "steady"])
+def test_the_way_over_a_cylinder_is_a_helix_of_constant_speed(length):
+    """Unrolled it is a straight line: of length sqrt(r^2 angle^2 + h^2) (common practice)."""
+    more = {"constraints": ["integral(sqrt(4*y'^2 + z'^2)) <= 9"]} if length else {}
+    problem = flat("sqrt(4*y'^2 + z'^2)", endpoints=["y(0) = 0", "z(0) = 0", "y(1) = 1", "z(1) = 3"], **more)
+    found = solve(problem)
+    assert found.value == pytest.approx(np.sqrt(13), rel=1e-8)
+    assert found.verdict is Verdict.GLOBAL_MINIMUM
+    x = np.linspace(0, 1, 11)
+    assert found.curve.evaluate("z", x) == pytest.approx(3 * x, abs=1e-6)
+    assert found.costates.evaluate("z", x) == pytest.approx(np.full(11, -3 / np.sqrt(13)), abs=1e-6)
 
 
 def test_the_square_is_granted_only_where_it_is_right():
