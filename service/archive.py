@@ -21,6 +21,7 @@ from service.spec import Document
 from solvers.curve import Array, Curve
 from solvers.problem import Condition, Problem
 from solvers.solution import (
+    Change,
     Check,
     Diagnosis,
     Extremal,
@@ -248,7 +249,7 @@ def _fitted(fitted: Fitted, problem: Problem) -> dict[str, Any]:
     }
 
 
-def _by_arc(found: Solution | SweepPoint) -> list[tuple[str, Curve]]:
+def _by_arc(found: Solution | SweepPoint | Change) -> list[tuple[str, Curve]]:
     """The arcs of a curve with their names; a curve without arcs is one without a name."""
     return [(arc.name, arc.curve) for arc in found.arcs] if found.curve is None else [("", found.curve)]
 
@@ -335,8 +336,8 @@ def _band(solution: Solution, problem: Problem, units: _Units) -> dict[str, Any]
     changes = [
         {
             "constant": change.constant,
-            "arcs": [_arc("", change.curve, {name: units.function(name) for name in change.curve.functions},
-                          problem.independent_unit)],
+            "arcs": [_arc(name, curve, {name: units.function(name) for name in curve.functions},
+                          problem.independent_unit) for name, curve in _by_arc(change)],
         }
         for change in solution.changes
     ]  # fmt: skip

@@ -77,11 +77,25 @@ class Slope:
 
 
 @dataclass(frozen=True, slots=True)
+class ArcCurve:
+    """The curve and the costates of one of several arcs."""
+
+    name: str
+    curve: Curve
+    costates: Curve | None = None
+
+
+@dataclass(frozen=True, slots=True)
 class Change:
-    """What one standard deviation of a constant does to the curve, to first order: at fixed places."""
+    """What one standard deviation of a constant does, to first order: to the curve at fixed places, to parameters.
+
+    Of a problem of arcs `arcs` has the curves instead.
+    """
 
     constant: str
-    curve: Curve
+    curve: Curve | None
+    parameters: Mapping[str, float] = field(default_factory=dict)
+    arcs: tuple[ArcCurve, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)
@@ -145,15 +159,6 @@ class SwitchPlace:
 
     place: float
     of: frozenset[str]
-
-
-@dataclass(frozen=True, slots=True)
-class ArcCurve:
-    """The curve and the costates of one of several arcs."""
-
-    name: str
-    curve: Curve
-    costates: Curve | None = None
 
 
 @dataclass(frozen=True, slots=True)

@@ -113,9 +113,11 @@ class Trajectory:
         return per(self.units.get(name, ""), self.unit, derivative) if stored is None else stored
 
     def by_arc(self, places: Array) -> list[tuple[Arc, Array]]:
-        """Rising places shared out among the arcs; a junction goes to the arc that ends there."""
-        owner = np.searchsorted([arc.end for arc in self.arcs[:-1]], places, side="left")
-        return [(arc, places[owner == number]) for number, arc in enumerate(self.arcs)]
+        """Rising places shared out among the arcs; a junction goes to the arc that ends there, and where it is named
+        twice to the arc that begins there too."""
+        ends = np.array([arc.end for arc in self.arcs[:-1]])
+        first, behind = (np.searchsorted(places, ends, side=side) for side in ("left", "right"))
+        return list(zip(self.arcs, np.split(places, np.minimum(first + 1, behind)), strict=True))
 
 
 def read_trajectory(result: Mapping[str, Any]) -> Trajectory | None:
@@ -138,8 +140,9 @@ def read_changes(result: Mapping[str, Any]) -> tuple[Trajectory, ...]:
 
 
 def band(changes: Sequence[Trajectory], name: str, derivative: int, places: Array) -> Array | None:
-    """One standard deviation of a function at places (independent tolerances); None where it is not known."""
-    if not changes or any(arc.coefficients(name, derivative) is None for change in changes for arc in change.arcs):
+    """One standard deviation of a function at rising places (independent tolerances), NaN where an arc lacks it; None
+    where it is not known."""
+    if not changes or any(all(arc.coefficients(name, derivative) is None for arc in c.arcs) for c in changes):
         return None
     parts = [np.concatenate([arc.evaluate(name, derivative, some) for arc, some in change.by_arc(places)])
              for change in changes]  # fmt: skip

@@ -206,15 +206,18 @@ def changes(path: Trajectory) -> tuple[Change, ...]:
 
     Raises `SingularError`.
     """
-    constants = path.program.compiled.lowered.problem.constants
+    problem = path.program.compiled.lowered.problem
+    constants, where = problem.constants, path.program.layout
     wanted = [index for index, constant in enumerate(constants) if constant.tolerance]
     if not wanted:
         return ()
     response, shifts = Response(path), limit_shifts(path)
-    return tuple(
-        Change(constants[k].name, _at_fixed_places(path, response.to(k, shifts[k]) * (constants[k].tolerance or 0.0)))
-        for k in wanted
-    )
+    found = []
+    for k in wanted:
+        change = response.to(k, shifts[k]) * (constants[k].tolerance or 0.0)
+        moved = zip((p.name for p in problem.parameters), change[where.parameters].tolist(), strict=True)
+        found.append(Change(constants[k].name, _at_fixed_places(path, change), dict(moved)))
+    return tuple(found)
 
 
 def _at_fixed_places(path: Trajectory, change: Array) -> Curve:
@@ -233,7 +236,7 @@ def _at_fixed_places(path: Trajectory, change: Array) -> Curve:
         for column, quantity in enumerate(quantities):
             name = primed(quantity)
             functions[name] = tuple(
-                _less(own, stored, width, left, right)
+                less_movement(own, stored, width, left, right)
                 for own, stored, width, left, right in zip(
                     path.pieces(modes[:, :, column]),
                     shape.functions[name],
@@ -251,7 +254,7 @@ def _at_fixed_places(path: Trajectory, change: Array) -> Curve:
     return Curve(path.breaks, functions)
 
 
-def _less(modes: Array, function: Array, width: float, left: float, right: float) -> Array:
+def less_movement(modes: Array, function: Array, width: float, left: float, right: float) -> Array:
     """A change less the slope of the function times a movement that runs from `left` to `right` over the interval."""
     if left == right == 0.0:
         return modes

@@ -39,7 +39,7 @@ def as_graph(
     graph, costates, changed = along_way(gauged.ways[0], shape, scaled, changes)
     breaks = graph.breaks.copy()
     breaks[0], breaks[-1] = _end(gauged, 0, breaks[0]), _end(gauged, -1, breaks[-1])
-    altered = tuple(replace(change, curve=replace(change.curve, breaks=breaks)) for change in changed)
+    altered = tuple(replace(c, curve=None if c.curve is None else replace(c.curve, breaks=breaks)) for c in changed)
     return replace(graph, breaks=breaks), replace(costates, breaks=breaks), altered
 
 
@@ -55,6 +55,7 @@ def along_way(
     kept = [name for name in way.unknowns if name in multipliers.functions]
     wanted = functions | {f"costate {name}": partial(multipliers.evaluate, name) for name in kept}
     for change in changes:
+        assert change.curve is not None
         for name in way.unknowns:
             wanted[f"{change.constant} {name}"] = partial(_changed, shape, change.curve, x, name)
     graph = regraph(shape.breaks, partial(shape.evaluate, x), wanted, way.unknowns[0])

@@ -6,28 +6,33 @@ from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass, replace
 
 import numpy as np
-from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
 from solvers.checks import free_ends
 from solvers.curve import Curve
+from solvers.forms.arcs_in_t import OnCommon
 from solvers.forms.beside import Beside, Piece
-from solvers.forms.gauge import Way
-from solvers.forms.graph import along_way
-from solvers.solution import ArcCurve, Check, Diagnosis, Finding, Price, Solution, Status, SweepPoint, SwitchPlace
+from solvers.solution import (
+    ArcCurve,
+    Change,
+    Check,
+    Diagnosis,
+    Finding,
+    Price,
+    Solution,
+    Status,
+    SweepPoint,
+    SwitchPlace,
+)
 from solvers.transcription.limits import number
-from solvers.transcription.lowering import primed
 
 Array = NDArray[np.float64]
-
-VANISHED = 1e-9
-"""Length, relative to the whole, below which a piece of an arc is left out of the curve: it has none."""
 
 
 def rejoin(beside: Beside, found: Solution) -> Solution:
     """The solution of the original problem from that of the equivalent one."""
     where = Where(beside, found.curve, _places(beside, found.parameters))
-    curves = tuple(_curves(beside, found.curve, found.costates, where.places))
+    curves, changes = _arcs(beside, found.curve, found.costates, where.places, found.changes)
     notes = [*found.notes, *_notes(beside, curves)]
     return replace(
         found,
@@ -40,7 +45,7 @@ def rejoin(beside: Beside, found: Solution) -> Solution:
         notes=tuple(notes),
         sweep=tuple(_point(beside, point) for point in found.sweep),
         extremals=tuple(replace(one, solution=rejoin(beside, one.solution)) for one in found.extremals),
-        changes=(),
+        changes=changes,
         switches=tuple(sorted(set(_switches(beside, found, where)), key=lambda switch: switch.place)),
     )
 
@@ -67,8 +72,17 @@ class Where:
 def _point(beside: Beside, point: SweepPoint) -> SweepPoint:
     """A point of a sweep with its curve by arcs."""
     swept = {sweep.constant: value for sweep, value in zip(beside.original.sweeps, point.at, strict=True)}
-    curves = _curves(beside, point.curve, None, _places(beside, point.parameters, swept))
-    return replace(point, curve=None, arcs=tuple(curves))
+    curves, _ = _arcs(beside, point.curve, None, _places(beside, point.parameters, swept))
+    return replace(point, curve=None, arcs=curves)
+
+
+def _arcs(
+    beside: Beside, curve: Curve | None, costates: Curve | None, places: Array, changes: tuple[Change, ...] = ()
+) -> tuple[tuple[ArcCurve, ...], tuple[Change, ...]]:
+    """The arcs of a curve and of its changes; none where there is no curve, or no places were found."""
+    if curve is None or not np.isfinite(places).all():
+        return (), ()
+    return OnCommon(beside, curve, costates, changes, places).arcs()
 
 
 def _places(beside: Beside, parameters: Mapping[str, float], constants: Mapping[str, float] | None = None) -> Array:
@@ -81,98 +95,6 @@ def _places(beside: Beside, parameters: Mapping[str, float], constants: Mapping[
     free = {p.name for p in problem.parameters} - values.keys()
     values |= dict.fromkeys(free, float("nan"))
     return np.array([number(place.tree, values) for place in problem.places])
-
-
-def _curves(beside: Beside, curve: Curve | None, along: Curve | None, places: Array) -> Iterator[ArcCurve]:
-    """The arcs of a curve and of its costates."""
-    if curve is None or not np.isfinite(places).all():
-        return
-    span = places[-1] - places[0]
-    for index, arc in enumerate(beside.original.arcs):
-        told = []
-        for piece in beside.pieces:
-            start, end = places[piece.place], places[piece.place + 1]
-            if piece.arc != index or end - start <= VANISHED * span:
-                continue
-            one = _upright if piece.own(beside.original.independent) in curve.functions else _stretched
-            told.append(one(beside, piece, curve, along, start, end))
-        if told:
-            costates = [part for _, part in told if part is not None]
-            yield ArcCurve(arc.name, _joined([part for part, _ in told]), _joined(costates) if costates else None)
-
-
-Functions = dict[str, tuple[Array, ...]]
-
-
-def _upright(
-    beside: Beside, piece: Piece, curve: Curve, along: Curve | None, start: float, end: float
-) -> tuple[Curve, Curve | None]:
-    """A piece that was found in parametric form, and its costates."""
-    names = {piece.own(unknown.name): unknown.name for unknown in beside.original.arcs[piece.arc].unknowns}
-    way = Way(piece.own(beside.original.independent), tuple(names))
-    shape, costates, _ = along_way(way, curve, along or Curve(curve.breaks, {}), ())
-    breaks = np.concatenate([[start], shape.breaks[1:-1], [end]])
-    names |= {f"{own}'": f"{name}'" for own, name in names.items()}
-
-    def renamed(part: Curve) -> Curve:
-        return Curve(breaks, {names[own]: modes for own, modes in part.functions.items()})
-
-    return renamed(shape), None if along is None else renamed(costates)
-
-
-def _stretched(
-    beside: Beside, piece: Piece, curve: Curve, along: Curve | None, start: float, end: float
-) -> tuple[Curve, Curve | None]:
-    """A piece along which t runs evenly with the common variable, and its costates."""
-    length = end - start
-    breaks = np.append(start + length * curve.breaks[:-1], end)
-    costates = None if along is None else Curve(breaks, _multipliers(beside, piece, along, length))
-    return Curve(breaks, _functions(beside, piece, curve, length)), costates
-
-
-def _functions(beside: Beside, piece: Piece, curve: Curve, length: float) -> Functions:
-    """The unknowns of a piece with their derivatives in t."""
-    functions: Functions = {}
-    widths = np.diff(curve.breaks) * length
-    for unknown in beside.original.arcs[piece.arc].unknowns:
-        for order in range(unknown.order + 1):
-            quantity = (unknown.name, order)
-            own = piece.own(primed(quantity))
-            if quantity in piece.lowered.given or own not in curve.functions:  # not known better than by the function
-                below = functions[primed((unknown.name, order - 1))]
-                functions[primed(quantity)] = tuple(
-                    np.asarray(legendre.legder(part) * (2 / width), dtype=float)
-                    for part, width in zip(below, widths, strict=True)
-                )
-            else:
-                functions[primed(quantity)] = curve.functions[own]
-    return functions
-
-
-def _multipliers(beside: Beside, piece: Piece, costates: Curve, length: float) -> Functions:
-    """The costates of a piece, and per unit of t the multipliers of what binds on it."""
-    states = {primed(state) for state in piece.lowered.states}
-    functions: Functions = {}
-    for copy, parts in costates.functions.items():
-        name, of = beside.parted(copy)
-        if of == piece:
-            functions[name] = parts if name in states else tuple(part / length for part in parts)
-    return functions
-
-
-def _joined(curves: list[Curve]) -> Curve:
-    """Curves that follow each other as one; a function that one of them lacks is zero there."""
-    if len(curves) == 1:
-        return curves[0]
-    names = dict.fromkeys(name for curve in curves for name in curve.functions)
-    nothing = np.zeros(1)
-    return Curve(
-        np.concatenate([curves[0].breaks, *(curve.breaks[1:] for curve in curves[1:])]),
-        {
-            name: tuple(part for c in curves for part in c.functions.get(name, (nothing,) * (len(c.breaks) - 1)))
-            for name in names
-        },
-    )
 
 
 def _prices(beside: Beside, prices: Iterable[Price]) -> Iterator[Price]:

@@ -40,6 +40,19 @@ def _last(rows, arc):
     return max(index for index, row in enumerate(rows) if row[0] == arc)
 
 
+def test_the_band_of_a_tolerance_is_told_by_arcs(client, staged):
+    result = client.get(staged["links"]["result"]).json()
+    (change,) = result["band"]["curve"]
+    assert change["constant"] == "b"
+    assert [arc["name"] for arc in change["arcs"]] == [arc["name"] for arc in result["curve"]["arcs"]]
+    address = f"{staged['links']['table']}?rows=5&sigma=true"
+    heading, *rows = csv.reader(io.StringIO(client.get(address).text))
+    assert heading[2:4] == ["h [m]", "h sigma [m]"]
+    assert float(rows[0][3]) == pytest.approx(0, abs=1e-9)
+    assert float(rows[-1][3]) == pytest.approx(result["band"]["value"], rel=1e-4)  # the height at the top is the value
+    assert "Shaded: one standard deviation" in client.get(staged["links"]["page"]).text
+
+
 def test_the_page_says_what_the_arcs_are(client, staged):
     page = client.get(staged["links"]["page"]).text
     assert "second stage: t from t2 to t3. At t3 h, v and m are continuous." in page

@@ -310,3 +310,6 @@ def test_arcs_are_told_one_by_one_with_the_units_of_all():
     assert [arc["name"] for arc in found["multipliers"]["costates"]["arcs"]] == ["coast"]
     assert found["multipliers"]["costates"]["units"] == {"x": "mJ/mm"}
     assert read_trajectory(found).end == 300
+    altered = replace(solution, changes=(Change("k", None, arcs=(first, second)),))
+    (change,) = result_document(DOCUMENT, PROBLEM, altered, {}, {})["band"]["curve"]
+    assert change == {"constant": "k", "arcs": found["curve"]["arcs"]}

@@ -81,6 +81,34 @@ def test_the_table_has_the_deviation_beside_each_column_where_it_is_asked_for(ba
     np.testing.assert_allclose(both.rows[:, 4], 0, atol=1e-15)
 
 
+@pytest.fixture
+def banded_vehicle(vehicle):
+    """The mass of the vehicle moves by 1 kg before the junction and by 2 kg after it, the thrust by 3 N."""
+    result = copy.deepcopy(vehicle)
+    burn, coast = result["curve"]["arcs"]
+    changes = [{**burn, "functions": {"h": [[0.0]] * 2, "m": [[1.0]] * 2, "F": [[3.0]] * 2}},
+               {**coast, "functions": {"h": [[0.0]], "m": [[2.0]]}}]  # fmt: skip
+    result["band"] = {"value": 0.1, "curve": [{"constant": "c", "arcs": changes}]}
+    return result
+
+
+def test_both_sides_of_a_junction_have_their_own_deviation(banded_vehicle):
+    made = table(banded_vehicle, columns=["m", "F"], sigma=True)
+    at_junction = made.rows[made.rows[:, 0] == 2.0]
+    assert at_junction[:, 2].tolist() == [1.0, 2.0]
+    assert at_junction[0, 4] == 3.0
+    assert np.isnan(at_junction[1, 3:]).all()  # no thrust on the second arc
+    traces = {
+        trace.label: trace for plot in plots(banded_vehicle) if plot.key.startswith("curve") for trace in plot.traces
+    }
+    mass = traces["m"]
+    assert set(mass.band[mass.places < 2]) == {1.0}
+    assert set(mass.band[mass.places > 2]) == {2.0}
+    assert mass.band[mass.places == 2.0].tolist() == [1.0, 2.0]
+    thrust = traces["F"]
+    assert (np.isfinite(thrust.band) == np.isfinite(thrust.values)).all()
+
+
 def test_a_deviation_that_is_not_known_is_refused(hose):
     with pytest.raises(TableError, match="tolerances"):
         table(hose, rows=5, sigma=True)
