@@ -237,6 +237,7 @@ def _fitted(fitted: Fitted, problem: Problem) -> dict[str, Any]:
 
     return {
         "of": fitted.label,
+        "arc": fitted.arc,
         "pointer": fitted.pointer,
         "unit": unit.text,
         "place": column(fitted.places, problem.independent_unit),

@@ -369,6 +369,7 @@ class FittedObservations(Part):
     """One list of observations and what was fitted to it; all lists have one entry for each point."""
 
     of: str
+    arc: str = Field("", description="the arc that all of it is of, where the document names one")
     pointer: str
     unit: str
     place: list[float | None]

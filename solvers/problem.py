@@ -148,11 +148,15 @@ class Jump:
 
 @dataclass(frozen=True, slots=True)
 class Observed:
-    """A value (SI) that was measured at a place, which is one of `Problem.places`; sigma is 1 where it is not known."""
+    """A value (SI) that was measured at a place, which is one of `Problem.places`; sigma is 1 where it is not known.
+
+    Of a problem of arcs `side` says which of those that meet at the place it is of: "-" the one before, "+" the next.
+    """
 
     place: Node
     value: float
     sigma: float = 1.0
+    side: str = ""
 
 
 @dataclass(frozen=True, slots=True)
@@ -160,6 +164,7 @@ class Observation:
     """What was measured along the curve: the squares of the misfits, over sigma, join the endpoint term.
 
     `body` is what was measured, a formula of what runs along the curve; `weighted` says that the sigmas are known.
+    `arc` is the name of the arc that all of it is of, where the user gave one.
     """
 
     body: Node
@@ -168,6 +173,7 @@ class Observation:
     label: str
     pointer: str
     unit: Unit = PLAIN
+    arc: str = ""
 
 
 @dataclass(frozen=True, slots=True)

@@ -178,6 +178,7 @@ class Fitted:
     normalised: Array | None
     fitted_sigma: Array | None
     unit: Unit = PLAIN
+    arc: str = ""  # where the user said which one it is
 
 
 @dataclass(frozen=True, slots=True)

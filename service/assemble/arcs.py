@@ -8,6 +8,7 @@ from dataclasses import dataclass, replace
 from service.assemble.formulas import ArcFormulas, Expression, Formula, Formulas, Statement
 from service.assemble.junctions import Junctions, Stretch
 from service.assemble.meaning import Meaning
+from service.assemble.measured_arcs import MeasuredOnArcs
 from service.assemble.names import Kind
 from service.assemble.orders import derivatives, explicit, reach_of
 from service.assemble.places import Places
@@ -20,6 +21,8 @@ from solvers.problem import Arc, Condition, Equation, Problem, Unknown
 
 MOST_PIECES = 24
 """Pieces of arcs between neighbouring places."""
+MOST_OBSERVED_PIECES = 120
+"""The same where something was observed: data lie densely, so that every piece is short."""
 
 Written = Mapping[str, Expression]
 """Abbreviations by name."""
@@ -64,6 +67,9 @@ class ArcBuilder:
         stretches = [self.stretch(law, over_all) for law in laws]
         junctions = Junctions(stretches, self.places, self.formulas)
         self.raise_orders(junctions)
+        for observed in self.formulas.observed:
+            for stretch in stretches:
+                stretch.raise_orders(derivatives([observed.tree], stretch.reach))
         junctions.jumps = frozenset(
             jump for node in self.values(self.formulas.endpoints) for jump in junctions.jump(node, self.index(node))
         )
@@ -74,6 +80,8 @@ class ArcBuilder:
         refuse(Stage.CONDITIONS, junctions.complaints(placed, index))
         refuse(Stage.CONDITIONS, [found for law, s in zip(laws, stretches, strict=True) for found in _twice(law, s)])
         refuse(Stage.CONDITIONS, self.unused(stretches))
+        measured = MeasuredOnArcs(problem.observations, self.formulas, junctions, self.places)
+        refuse(Stage.CONDITIONS, measured.complaints())
         arcs = tuple(self.arc(law, stretch, over_all) for law, stretch in zip(laws, stretches, strict=True))
         orders = {unknown.name: unknown.order for arc in arcs for unknown in arc.unknowns}
         orders |= {u.name: max(s.orders.get(u.name, 0) for s in stretches) for u in problem.unknowns}
@@ -94,14 +102,18 @@ class ArcBuilder:
             endpoint=None if problem.endpoint is None else _sided(problem.endpoint, junctions, self.places),
             arcs=tuple(replace(arc, integrals=tuple(sided(c) for c in arc.integrals)) for arc in arcs),
             jumps=junctions.jumps,
+            observations=measured.sided(),
         )
 
     def too_many_pieces(self) -> Iterable[Complaint]:
         """Places within arcs cut them into pieces, each of which has all its unknowns for itself."""
         pieces = len(self.places.spots) - 1
-        if pieces > MOST_PIECES:
-            message = f"With the places named within them the arcs have {pieces} pieces; at most {MOST_PIECES}."
-            yield Complaint("/arcs", None, "too-many", message, "Name fewer places within arcs.")
+        most, kind, hint = MOST_PIECES, "places named", "Name fewer places within arcs."
+        if self.formulas.observed:
+            most, kind, hint = MOST_OBSERVED_PIECES, "places named or observed", "Take means of neighbouring points."
+        if pieces > most:
+            message = f"With the {kind} within them the arcs have {pieces} pieces; at most {most}."
+            yield Complaint("/arcs", None, "too-many", message, hint)
 
     def laws(self, arc: ArcFormulas) -> Laws:
         """All that holds on an arc."""
@@ -156,9 +168,7 @@ class ArcBuilder:
         for node in self.values(stated):
             before, after = junctions.around(self.index(node))
             for stretch in {id(s): s for s in (before, after) if s is not None}.values():
-                for name, order in stretch.behind(node):
-                    if name in stretch.orders:
-                        stretch.orders[name] = max(stretch.orders[name], order)
+                stretch.raise_orders(stretch.behind(node))
 
     def values(self, formulas: Iterable[Formula]) -> Iterable[At]:
         """The values at places in some formulas."""
@@ -188,6 +198,7 @@ class ArcBuilder:
         )
         used = _used(_running(law, over_all), dict(law.where))
         used |= _used([Name(node.name) for node in self.values(self.formulas.moving())], dict(law.where))
+        used |= _used([formula.tree for formula in self.formulas.observed], dict(law.where))
         unknown = set(self.meaning.names.of(Kind.UNKNOWN)) - orders.keys()
         where = tuple(
             (name, tree)

@@ -17,7 +17,7 @@ from service.assemble.guesses import Guess, check_guess_names, read_guesses, wit
 from service.assemble.meaning import Meaning, read_meaning
 from service.assemble.measured import read_tables
 from service.assemble.names import Kind, declare
-from service.assemble.observing import Readings, check_points, read_observations
+from service.assemble.observing import Readings, check_points, read_observations, unknown_arcs
 from service.assemble.orders import explicit, find_orders, reach_of
 from service.assemble.placement import misplaced
 from service.assemble.places import Places, find_places, settle
@@ -54,7 +54,7 @@ def assemble(document: Document) -> Problem:
     measured = read_tables(document, names)
     formulas = parse_all(document, names, measured.tables)
     _check_size(formulas)
-    refuse(Stage.NAMES, [*wrong_names(formulas, names), *out_of_scope(formulas)])
+    refuse(Stage.NAMES, [*wrong_names(formulas, names), *out_of_scope(formulas), *unknown_arcs(document)])
     meaning = read_meaning(formulas, names)
     refuse(Stage.FORMULAS, [*misplaced(formulas, meaning), *without_place(formulas, meaning)])
     _check_written_out(formulas, meaning)
@@ -76,8 +76,8 @@ def assemble(document: Document) -> Problem:
     stated = (*formulas.endpoints, *formulas.constraints, *(c for arc in formulas.arcs for c in arc.constraints))
     refuse(Stage.CONDITIONS, [found for statement in stated for found in says_nothing(statement, meaning)])
     check_points(document, readings)
-    where = ((pointer, at) for found in readings for pointer, at in found.places)
-    places = find_places(formulas, units, dict(declared.parameters), where)
+    measured_at = (place for found in readings for place in found.places)
+    places = find_places(formulas, units, dict(declared.parameters), measured_at)
     builder = _Builder(document, formulas, meaning, declared, guesses, units, places, sides, readings)
     problem = covered(builder.problem(value_unit, tuple(measured.tables.values())), formulas, meaning, builder.settle)
     check(problem)

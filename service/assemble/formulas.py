@@ -103,6 +103,7 @@ class Formulas:
     guesses: Mapping[str, Expression]
     arcs: tuple[ArcFormulas, ...] = ()
     observed: tuple[Expression, ...] = ()  # what was measured
+    observed_on: tuple[str, ...] = ()  # the arc that each of these is said to be of, or ""
 
     @property
     def integrands(self) -> tuple[Expression, ...]:
@@ -189,6 +190,7 @@ def parse_all(document: Document, names: Names, tables: Tables) -> Formulas:
             expression(observation.of, "observations", index, "of")
             for index, observation in enumerate(document.observations)
         ),
+        observed_on=tuple(observation.arc for observation in document.observations),
     )
     lines = chain(formulas.dynamics, *(arc.dynamics for arc in formulas.arcs))
     complaints += [found for line in lines for found in _no_equation(line)]

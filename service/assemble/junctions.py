@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass
 
 from service.assemble.formulas import ArcFormulas, Formula, Formulas
@@ -33,6 +33,12 @@ class Stretch:
         """The quantities that a value depends on here."""
         found = self.reach.get(node.name) or frozenset({(node.name, node.order)})
         return frozenset((name, order) for name, order in found if name in self.unknowns)
+
+    def raise_orders(self, found: Iterable[tuple[str, int]]) -> None:
+        """Let derivatives count that only occur in values at places."""
+        for name, order in found:
+            if name in self.orders:
+                self.orders[name] = max(self.orders[name], order)
 
 
 class Junctions:
@@ -80,6 +86,13 @@ class Junctions:
             order < min(before.orders[name], after.orders[name]) and Jump(name, order, place) not in self.jumps
             for name, order in before.behind(node) | after.behind(node)
         )
+
+    def named(self, arc: str, place: int) -> str | None:
+        """The side of a place on which a named arc lies; None where it does not reach there."""
+        stretch = next(stretch for stretch in self.stretches if stretch.formulas.name == arc)
+        if not stretch.first <= place <= stretch.last:
+            return None
+        return "-" if place > stretch.first else "+"
 
     def complaints(self, formulas: Sequence[Formula], index: dict[int, int]) -> Iterator[Complaint]:
         """One-sided values at places that are no junctions, values without a side where both differ, and values of

@@ -9,10 +9,11 @@ from dataclasses import dataclass
 from service.assemble.declared import beyond
 from service.assemble.dimensions import Sort, Units
 from service.assemble.formulas import Expression, Formulas
-from service.assemble.places import Places, observed_spot
+from service.assemble.measured_places import Measured, observed_spot
+from service.assemble.places import Places
 from service.assemble.quoting import quoted
 from service.assemble.relations import shown_unit
-from service.complaints import Complaint, Stage, pointer, refuse, sentence
+from service.complaints import Complaint, Stage, listing, pointer, refuse, sentence
 from service.spec import Document
 from service.spec.model import ObservationPart
 from service.units import ONE, Measure, parse_unit
@@ -33,11 +34,13 @@ class Readings:
     squares: Measure
     points: tuple[tuple[float, float, float | None], ...]
     pointer: str
+    arc: str  # its name where it is given
 
     @property
-    def places(self) -> Iterator[tuple[str, float]]:
+    def places(self) -> Iterator[Measured]:
         """Each place with the pointer of its point."""
-        return ((f"{self.pointer}/points/{index}", place) for index, (place, _, _) in enumerate(self.points))
+        for index, (place, _, _) in enumerate(self.points):
+            yield Measured(f"{self.pointer}/points/{index}", place, self.arc)
 
     def clash(self, other: Measure) -> Complaint:
         """The squares cannot be added to what else is minimised."""
@@ -57,7 +60,8 @@ class Readings:
             for at, value, sigma in self.points
         )
         weighted = self.points[0][2] is not None
-        return Observation(self.of.tree, points, weighted, self.of.text.strip(), f"{self.pointer}/of", self.unit)
+        pointer = f"{self.pointer}/of"
+        return Observation(self.of.tree, points, weighted, self.of.text.strip(), pointer, self.unit, self.arc)
 
 
 def read_observations(document: Document, formulas: Formulas, units: Units) -> tuple[Readings, ...]:
@@ -81,7 +85,7 @@ def _read(part: ObservationPart, of: Expression, place: str, units: Units, by: f
         points.append(point)
     weighted = points[0][2] is not None
     squares = ONE if weighted else measure.power(2)
-    return Readings(of, unit, squares, tuple(points), place)
+    return Readings(of, unit, squares, tuple(points), place, part.arc)
 
 
 def _unit(part: ObservationPart, of: Expression, sort: Sort, place: str, units: Units) -> tuple[Unit, Measure]:
@@ -109,7 +113,7 @@ def _unit(part: ObservationPart, of: Expression, sort: Sort, place: str, units: 
 
 
 def check_points(document: Document, readings: Sequence[Readings]) -> None:
-    """Raise `Refused` where sigmas are none or partly missing, where a maximum is sought, or on arcs."""
+    """Raise `Refused` where sigmas are none or partly missing, or where a maximum is sought."""
     complaints = [*_sigmas(document), *_sought(document)]
     refuse(Stage.CONDITIONS, complaints)
     count = sum(len(found.points) for found in readings)
@@ -118,6 +122,16 @@ def check_points(document: Document, readings: Sequence[Readings]) -> None:
         refuse(
             Stage.SIZE, [Complaint("/observations", None, "problem-too-large", message, "Take means of neighbours.")]
         )
+
+
+def unknown_arcs(document: Document) -> Iterator[Complaint]:
+    """Arcs that observations name and that there are not."""
+    names = [arc.name for arc in document.arcs]
+    for index, part in enumerate(document.observations):
+        if part.arc and part.arc not in names:
+            message = f"There is no arc “{part.arc}”."
+            hint = f"The arcs are {listing(names)}." if names else "Leave it out: this problem has no arcs."
+            yield Complaint(pointer("observations", index, "arc"), None, "unknown-arc", message, hint)
 
 
 def _sigmas(document: Document) -> Iterator[Complaint]:
@@ -139,7 +153,3 @@ def _sought(document: Document) -> Iterator[Complaint]:
     if document.observations and document.functional.seek != "minimum":
         message = f"Sought is {document.functional.seek}, but observations are fitted by least squares."
         yield Complaint("/functional/seek", None, "fit-is-a-minimum", message, 'Write "minimum".')
-    if document.observations and document.arcs:
-        message = "Observations on several arcs are not fitted yet."
-        hint = "State one arc, or write the squares into the endpoint term: (y(1) - 2.5)^2."
-        yield Complaint("/observations", None, "not-yet", message, hint)

@@ -18,9 +18,12 @@ def out_of_scope(formulas: Formulas) -> Iterator[Complaint]:
             owners.setdefault(name, []).append(arc.name)
     arcs = [arc.name for arc in formulas.arcs]
     inside = {formula.pointer for arc in formulas.arcs for formula in arc.running()}
+    inside |= {formula.pointer for formula in formulas.observed}
     for formula in formulas.moving():
         if formula.pointer not in inside:
             yield from _missing(formula, owners, arcs)
+    for formula, arc_name in zip(formulas.observed, formulas.observed_on, strict=True):
+        yield from _missing(formula, owners, [arc_name] if arc_name in arcs else arcs)
     for arc in formulas.arcs:
         for formula in arc.running():
             yield from _missing(formula, owners, [arc.name])

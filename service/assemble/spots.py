@@ -45,3 +45,33 @@ def spot_of(tree: Node, label: str, units: Units, parameters: dict[str, Paramete
         if by.factor != 1:
             tree = Product((tree, Number(by.factor, repr(by.factor))), (False, False))
     return Spot(Place(tree, label), value, None)
+
+
+def range_of(spot: Spot, parameters: dict[str, Parameter]) -> tuple[float, float]:
+    """Where a place may be."""
+    if spot.value is not None:
+        return spot.value, spot.value
+    parameter = parameters[spot.name or ""]
+    return parameter.lower, parameter.upper
+
+
+def outside(spot: Spot, first: Spot, last: Spot, parameters: dict[str, Parameter]) -> str | None:
+    """A sentence where the place can never lie between the ends."""
+    lower, upper = range_of(spot, parameters)
+    if upper <= range_of(first, parameters)[0]:
+        return f"The place {spot.place.label} lies before the first end, {first.place.label}."
+    if lower >= range_of(last, parameters)[1]:
+        return f"The place {spot.place.label} lies beyond the last end, {last.place.label}."
+    return None
+
+
+def order_of(one: Spot, other: Spot, parameters: dict[str, Parameter]) -> bool | None:
+    """Whether `one` comes before `other`; two free places come in the order of `parameters`; None: undecided."""
+    (low, high), (lower, upper) = range_of(one, parameters), range_of(other, parameters)
+    if high <= lower:
+        return True
+    if low >= upper:
+        return False
+    if one.name is not None and other.name is not None:
+        return list(parameters).index(one.name) < list(parameters).index(other.name)
+    return None

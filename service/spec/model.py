@@ -115,6 +115,11 @@ class ObservationPart(Part):
         tuple[Annotated[tuple[Number, ...], Field(min_length=2, max_length=3)], ...],
         Field(min_length=1, max_length=MOST_OBSERVED, description="[place, value] or [place, value, sigma]"),
     ]
+    arc: str = Field(
+        "",
+        max_length=100,
+        description="The arc on which all of this was measured; may be absent where the places say so",
+    )
     about: About = ""
 
 

@@ -117,6 +117,7 @@ class _Model:
             self.residuals / size if size else None,
             error,
             own.unit,
+            own.arc,
         )
 
 

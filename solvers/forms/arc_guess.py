@@ -9,6 +9,7 @@ from numpy.typing import NDArray
 
 from solvers.forms.beside import Beside, Piece
 from solvers.formula.nodes import At, Name
+from solvers.observations import known_values
 from solvers.problem import Jump, Problem, Unknown
 from solvers.starts.guess import first_value
 from solvers.starts.sketch import between, given_values
@@ -78,7 +79,7 @@ def _places(problem: Problem, constants: dict[str, float], parameters: dict[str,
 
 
 def _known(problem: Problem, constants: dict[str, float]) -> Known:
-    """Values that conditions fix, or hold away from zero."""
+    """Values that conditions fix, or hold away from zero, or that were measured."""
     known: Known = {}
     for condition in problem.endpoints:
         body = condition.body
@@ -91,6 +92,11 @@ def _known(problem: Problem, constants: dict[str, float]) -> Known:
         side = body.side if Jump(body.name, body.order, place) in problem.jumps else ""
         value = lower if np.isfinite(lower) else upper
         known.setdefault((body.name, body.order), []).append((place, side, value))
+    for name, order, tree, mean in known_values(problem):
+        place = next(index for index, place in enumerate(problem.places) if place.tree is tree)
+        values = known.setdefault((name, order), [])
+        if all(other != place for other, _, _ in values):
+            values.append((place, "", mean))
     return known
 
 

@@ -18,7 +18,7 @@ from graphlib import TopologicalSorter
 from itertools import pairwise
 
 from solvers.formula.nodes import At, Call, Name, Node, Number, Product, Sum, children, walk, with_children
-from solvers.problem import Arc, Condition, Equation, Jump, Place, Problem, Unknown
+from solvers.problem import Arc, Condition, Equation, Jump, Observation, Place, Problem, Unknown
 from solvers.transcription.limits import number
 from solvers.transcription.lowering import Lowered, lower, primed
 
@@ -46,11 +46,16 @@ class Piece:
 
 @dataclass(frozen=True, slots=True)
 class Beside:
-    """A problem of arcs and the equivalent one without."""
+    """A problem of arcs and the equivalent one without.
+
+    `measured` says for every list of observations of the equivalent problem which list of the original it is of, and
+    which of its points it has.
+    """
 
     original: Problem
     problem: Problem
     pieces: tuple[Piece, ...]
+    measured: tuple[tuple[int, tuple[int, ...]], ...] = ()
 
     def parted(self, text: str) -> tuple[str, Piece | None]:
         """The user's name or label behind a copy's, and the piece that it is on; None where it is on none."""
@@ -88,6 +93,7 @@ def side_by_side(problem: Problem, copied: Callable[[Problem, Piece], Copy] | No
         integrals += [replace(c, body=own.tree(c.body)) for c in arc.integrals]
     costs = [copy.over_arc(integrand) for copy in copies if (integrand := problem.arcs[copy.piece.arc].integrand)]
     placed = [replace(c, body=whole.tree(c.body)) for c in problem.endpoints]
+    observed = list(_observed(problem, copies))
     equivalent = replace(
         problem,
         independent=FRACTION,
@@ -105,10 +111,11 @@ def side_by_side(problem: Problem, copied: Callable[[Problem, Piece], Copy] | No
         ),
         constraints=tuple(condition for copy in copies for condition in copy.constraints()),
         integrals=tuple(integrals),
+        observations=tuple(observation for observation, _ in observed),
         arcs=(),
         jumps=frozenset(),
     )
-    return Beside(problem, equivalent, pieces)
+    return Beside(problem, equivalent, pieces, tuple(of for _, of in observed))
 
 
 def length_of(problem: Problem, place: int) -> Node:
@@ -226,6 +233,24 @@ class _Whole:
         after = index == 0 or node.side == "+"
         copy = self._copies[index if after else index - 1]
         return At(copy.quantity(node.name, node.order).name, 0, START if after else END)
+
+
+def _observed(problem: Problem, copies: tuple[Copy, ...]) -> Iterator[tuple[Observation, tuple[int, tuple[int, ...]]]]:
+    """Every list of observations shared out among the ends of the pieces, with its number and those of its points."""
+    places = {id(place.tree): index for index, place in enumerate(problem.places)}
+    for which, observation in enumerate(problem.observations):
+        shares: dict[tuple[int, bool], list[int]] = {}
+        for index, point in enumerate(observation.points):
+            place = places[id(point.place)]
+            ends = place > 0 and point.side != "+"
+            shares.setdefault((place - 1 if ends else place, ends), []).append(index)
+        for (piece, ends), own in shares.items():
+            copy = copies[piece]
+            points = tuple(replace(observation.points[k], place=END if ends else START) for k in own)
+            told = replace(
+                observation, body=copy.tree(observation.body), points=points, label=copy.piece.own(observation.label)
+            )
+            yield told, (which, tuple(own))
 
 
 def _sum(terms: list[Node]) -> Node:

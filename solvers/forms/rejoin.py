@@ -18,6 +18,7 @@ from solvers.solution import (
     Check,
     Diagnosis,
     Finding,
+    Fit,
     Price,
     Solution,
     Status,
@@ -46,6 +47,7 @@ def rejoin(beside: Beside, found: Solution) -> Solution:
         sweep=tuple(_point(beside, point) for point in found.sweep),
         extremals=tuple(replace(one, solution=rejoin(beside, one.solution)) for one in found.extremals),
         changes=changes,
+        fit=None if found.fit is None else _fit(beside, found.fit),
         switches=tuple(sorted(set(_switches(beside, found, where)), key=lambda switch: switch.place)),
     )
 
@@ -95,6 +97,38 @@ def _places(beside: Beside, parameters: Mapping[str, float], constants: Mapping[
     free = {p.name for p in problem.parameters} - values.keys()
     values |= dict.fromkeys(free, float("nan"))
     return np.array([number(place.tree, values) for place in problem.places])
+
+
+def _fit(beside: Beside, fit: Fit) -> Fit:
+    """The fit with all points of a list together again, in their order."""
+    original = beside.original
+    places = dict(zip((id(place.tree) for place in original.places), _places(beside, {}), strict=True))
+    told = []
+    for which, own in enumerate(original.observations):
+        shares = [(points, part) for (of, points), part in zip(beside.measured, fit.observations, strict=True)
+                  if of == which]  # fmt: skip
+        parts = [part for _, part in shares]
+        order = np.argsort([index for points, _ in shares for index in points])
+        told.append(
+            replace(
+                parts[0],
+                label=own.label,
+                pointer=own.pointer,
+                places=np.array([places[id(point.place)] for point in own.points]),
+                observed=np.concatenate([part.observed for part in parts])[order],
+                fitted=np.concatenate([part.fitted for part in parts])[order],
+                sigma=_together([part.sigma for part in parts], order),
+                normalised=_together([part.normalised for part in parts], order),
+                fitted_sigma=_together([part.fitted_sigma for part in parts], order),
+            )
+        )
+    return replace(fit, observations=tuple(told))
+
+
+def _together(parts: list[Array | None], order: NDArray[np.intp]) -> Array | None:
+    """The parts as one, in the given order; None where one is not known."""
+    known = [part for part in parts if part is not None]
+    return np.concatenate(known)[order] if len(known) == len(parts) else None
 
 
 def _prices(beside: Beside, prices: Iterable[Price]) -> Iterator[Price]:

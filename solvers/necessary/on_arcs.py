@@ -50,6 +50,10 @@ def necessary_on_arcs(problem: Problem, deadline: float | None = None) -> Necess
                     notes.append(note)
         for before, after in pairwise(zip(problem.arcs, derivations, strict=True)):
             found += [c for c in _junction(problem, before, after, check) if left_out(c) is None]
+        if problem.observations:
+            notes.append(
+                "At each place of an observation the momenta or costates jump by the slope of the squares there."
+            )
         notes.append("At the outer ends and at places between, what nothing fixes has its natural condition.")
     except TooLargeError as error:
         notes.append(f"The necessary conditions are left out: {error}.")

@@ -168,7 +168,7 @@ def _misfit(compiled: Compiled, where: Layout, z: Array) -> float:
     rates = point_outputs(compiled, where, z)[:, : compiled.point.states]
     slopes = z[where.nodes[-1]] - z[where.nodes[0]]
     sizes = np.abs(z[where.nodes]).max(axis=0)
-    sizes = np.where(sizes > 0, sizes, max(float(sizes.max(initial=0.0)), 1e-300))
+    sizes = np.where(sizes > 0, sizes, float(sizes.max(initial=0.0)) or 1.0)
     misfit = float(np.mean(np.abs(rates - slopes) / sizes)) if rates.size else 0.0
     return misfit if np.isfinite(misfit) else np.inf
 

@@ -29,6 +29,11 @@ def observed_plots(result: Mapping[str, Any], trajectory: Trajectory) -> Iterabl
             yield _residuals(found, fit, trajectory, count)
 
 
+def _on(found: Mapping[str, Any]) -> str:
+    """The arc of a list, where it has one."""
+    return f" on {found['arc']}" if found.get("arc") else ""
+
+
 def _over_curve(found: Mapping[str, Any], fit: Mapping[str, Any], trajectory: Trajectory, count: int) -> Plot:
     places, observed, fitted = (_array(found[name]) for name in ("place", "observed", "fitted"))
     of, unit = str(found["of"]), str(found["unit"])
@@ -43,7 +48,7 @@ def _over_curve(found: Mapping[str, Any], fit: Mapping[str, Any], trajectory: Tr
     bars = "" if not len(errors) else ", each with one sigma" if fit["sigmas_known"] else ", each with their spread"
     return Plot(
         key=identifier(f"observed-{count}"),
-        heading=f"Observations of {of}",
+        heading=f"Observations of {of}{_on(found)}",
         finding=f"{len(places)} observed values{bars}, and the curve that was fitted to them.",
         across=bracketed(trajectory.independent, trajectory.unit),
         up=bracketed(of if len(of) < 30 else "value", unit),
@@ -74,7 +79,7 @@ def _residuals(found: Mapping[str, Any], fit: Mapping[str, Any], trajectory: Tra
     ends = np.array([trajectory.start, trajectory.end])
     return Plot(
         key=identifier(f"observed-{count}-residuals"),
-        heading=f"Residuals of {found['of']}",
+        heading=f"Residuals of {found['of']}{_on(found)}",
         finding=finding,
         across=bracketed(trajectory.independent, trajectory.unit),
         up=f"residual / {what}",

@@ -221,6 +221,7 @@ SECTIONS = (
             _UNIT,
             Column("sigma", "sigma", "Sigma", Kind.VALUE, example="0.2", width="narrow"),
             Column("points", "points", "Points", Kind.POINTS, example="0.5 1.21"),
+            Column("arc", "arc", "On the arc", width="medium"),
             _ABOUT,
         ),
         row="list",

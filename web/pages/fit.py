@@ -41,10 +41,15 @@ def fit_view(result: Mapping[str, Any], run_id: str) -> FitView | None:
         names=names if len(names) > 1 else (),
         correlations=_correlations(names, fit["covariance"]),
         files=tuple(
-            (str(found["of"]), tuple((f.name, links.observed(run_id, s, number)) for s, f in FILE_FORMATS.items()))
+            (measured(found), tuple((f.name, links.observed(run_id, s, number)) for s, f in FILE_FORMATS.items()))
             for number, found in enumerate(fit["lists"], start=1)
         ),
     )
+
+
+def measured(found: Mapping[str, Any]) -> str:
+    """What a list of observations is of."""
+    return f"{found['of']} on {found['arc']}" if found.get("arc") else str(found["of"])
 
 
 def _sentence(fit: Mapping[str, Any]) -> str:

@@ -49,6 +49,9 @@ def test_every_sample_survives_the_form(name):
         pytest.param(
             {"format": 1, "observations": [{"of": "y", "points": [[0, 1.5], [2, 3, 0.1]]}]}, id="points in lines"
         ),
+        pytest.param(
+            {"format": 1, "observations": [{"of": "y", "arc": "burn 2", "points": [[0, 1.5]]}]}, id="points of an arc"
+        ),
         pytest.param({"format": 1, "observations": [{"of": "y", "points": [[0, "1"]]}]}, id="a text in a point"),
         pytest.param({"format": 1, "observations": [{"of": "y", "points": [[], 3]}]}, id="points that are none"),
         pytest.param({"format": 1, "observations": [{"of": "y", "colour": "red", "sigma": 2.0}]}, id="a strange part"),
