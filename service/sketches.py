@@ -10,15 +10,18 @@ import sys
 from collections.abc import Mapping
 from functools import cache
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from service import samples
 from web.thumbnails import Sketch
 
+if TYPE_CHECKING:
+    from web.trajectory import Trajectory
+
 _STORED = Path(__file__).parent / "samples" / "sketches" / "curves.json"
 POINTS = 61
 DIGITS = 4
-_SHAPES = ("chute", "chute-over-duct", "hose", "hose-over-bench", "sleeve", "sleeve-limit")
+_SHAPES = ("chute", "chute-over-duct", "hose", "hose-over-bench", "hose-lengths", "sleeve", "sleeve-limit")
 _DOWNWARDS = ("chute", "chute-over-duct")
 _DRAWN: Mapping[str, tuple[str, ...]] = {"crucible": ("x", "q"), "fin": ("y",)}
 """Unknowns to draw where it is not only the first one; the second and further ones are scaled to the first."""
@@ -32,26 +35,36 @@ def sketches() -> Mapping[str, Sketch]:
 
 
 def drawn(name: str, result: Mapping[str, Any]) -> list[list[list[float]]]:
-    """The lines of a sample's picture from its result document: points of the first unknown, then of others."""
-    import numpy as np  # not for a server, which only reads what is stored
+    """The lines of a sample's picture from its result document: points of the first unknown, then of others.
 
-    from web.trajectory import read_trajectory
+    Of a sweep the first unknown's curves that were kept, of a continuation the value over the constant.
+    """
+    from web.trajectory import read_sweep, read_trajectory  # not for a server, which only reads what is stored
 
+    if (branch := result["continuation"]) is not None:
+        way = sorted([*branch["points"], *branch["folds"]], key=lambda p: p["leg"])  # a fold ends its leg
+        return [[[_short(point["at"]), _short(point["value"])] for point in way]]
+    if result["sweep"] is not None:
+        return [_line(kept, kept.names[0]) for _, kept in read_sweep(result)]
     trajectory = read_trajectory(result)
     assert trajectory is not None, f"sample {name} has no curve"
+    return [_line(trajectory, unknown) for unknown in _DRAWN.get(name, trajectory.names[:1])]
+
+
+def _line(trajectory: Trajectory, unknown: str) -> list[list[float]]:
+    """Points of an unknown over its first arc."""
+    import numpy as np
+
     places = np.linspace(trajectory.start, trajectory.end, POINTS)
-    arc = trajectory.arcs[0]
-    lines = []
-    for unknown in _DRAWN.get(name, trajectory.names[:1]):
-        values = arc.evaluate(unknown, 0, places)
-        lines.append([[_short(x), _short(y)] for x, y in zip(places, values, strict=True)])
-    return lines
+    values = trajectory.arcs[0].evaluate(unknown, 0, places)
+    return [[_short(x), _short(y)] for x, y in zip(places, values, strict=True)]
 
 
 def _sketch(name: str, lines: list[tuple[tuple[float, float], ...]]) -> Sketch:
     curve, *others = lines
-    scaled = tuple(_scaled(other, curve) for other in others)
-    return Sketch(curve, scaled, true_shape=name in _SHAPES, downwards=name in _DOWNWARDS)
+    if name in _DRAWN:
+        others = [_scaled(other, curve) for other in others]
+    return Sketch(curve, tuple(others), true_shape=name in _SHAPES, downwards=name in _DOWNWARDS)
 
 
 def _scaled(
