@@ -4,6 +4,10 @@ The optimality system on the mesh, with what binds as equalities, is solved toge
 unknown and the length along the branch as one more equation, so that nothing is singular at a fold.  Along the branch
 go Newton's steps from a predictor along the tangent; a fold lies where the constant turns back.
 
+Where a limit begins or ceases to bind before any fold, the minimiser finds the limits that are active a little further
+on, and the branch goes on from there if the curve has hardly changed.  Behind a fold solutions need be no minima: there
+the branch ends at such a limit.
+
 Reference: Keller (1977), Numerical solution of bifurcation and nonlinear eigenvalue problems, in: Applications of
 Bifurcation Theory (pseudo-arclength; from memory).
 """
@@ -20,15 +24,16 @@ from numpy.typing import NDArray
 from solvers.answers.response import Response, SingularError
 from solvers.answers.sensitivity import limit_shifts
 from solvers.deadline import Deadline
-from solvers.minimise.ipopt import Minimum, Outcome
+from solvers.minimise.ipopt import Minimum, Outcome, minimise
 from solvers.minimise.newton import within_limits
+from solvers.problem import Seek
 from solvers.search import refinement
-from solvers.search.attempt import make_program
+from solvers.search.attempt import SOLVED, make_program
 from solvers.solution import Branch, BranchPoint
 from solvers.transcription.functions import with_constants
 from solvers.transcription.layout import layout
 from solvers.transcription.program import Program, restated
-from solvers.transcription.trajectory import Trajectory, carry, trajectory
+from solvers.transcription.trajectory import Trajectory, as_start, carry, slopes_of, trajectory
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]
@@ -41,6 +46,12 @@ SHORTEST, LONGEST = 1e-5, 0.1
 STEPS = 8
 CLOSE = 1e-10
 """Newton's residual, scaled, at which a point counts as solved."""
+RESTART = 0.01
+"""Length of a step below which a limit is taken to be in the way."""
+FURTHER = (0.01, 0.03)
+"""How far on, relative to the constant, the minimiser looks for the limits that are active then."""
+SAME_CURVE = 0.1
+"""How much the scaled variables may change meanwhile (root mean square): else it found another curve."""
 QUICK = 3
 """Newton's steps up to which the next step along the branch may be longer."""
 
@@ -78,10 +89,14 @@ class _Follower:
         self.points: list[BranchPoint] = []
         self.folds: list[BranchPoint] = []
         self.error = 0.0
+        self.crossed = 0  # how often limits began or ceased to bind
 
     def branch(self) -> Branch:
         """Follow it."""
         end = self._followed()
+        if self.crossed:
+            times = "once" if self.crossed == 1 else f"{self.crossed} times"
+            end = f"{end} On the way limits began or ceased to bind; the branch was taken up beyond that {times}."
         return Branch(self.constant, tuple(self.points), tuple(self.folds), end, self.error)
 
     def _followed(self) -> str:
@@ -89,20 +104,24 @@ class _Follower:
             first = self._corrected(self.path, self.began, None, 0.0)
         except SingularError:
             first = None
-        if first is None:
-            return "The branch could not be begun: the solution is singular already, or a limit ceases to bind."
-        here, step, way = first[0], FIRST_STEP, np.sign(self.to - self.began)
-        if here.tangent[-1] * way < 0:
-            here = replace(here, tangent=-here.tangent)
+        way = float(np.sign(self.to - self.began))
+        here = self._minimised(self.path, self.began, way) if first is None else _turned(first[0], way)
+        if here is None:
+            return "The branch could not be begun: the solution is singular already, or a limit just begins to bind."
+        step = FIRST_STEP
         if self._add(here):
             return "Stopped."
         while len(self.points) < POINTS:
             if self.deadline.over:
                 return "The time limit was reached."
             found = self._next(here, step)
+            if found is None and step > RESTART >= step / 2 and (beyond := self._restarted(here)) is not None:
+                self.crossed += 1
+                found = beyond, QUICK
+                step = FIRST_STEP
             if found is None:
                 if step <= SHORTEST:
-                    return "No further point was found: a limit begins to bind here, or the curve degenerates."
+                    return self._stuck()
                 step /= 2
                 continue
             there, count = found
@@ -115,6 +134,42 @@ class _Follower:
                 return "Stopped."
             step = min(step * (1.5 if count <= QUICK else 1.0 if count <= QUICK + 2 else 0.6), LONGEST)
         return f"The branch has {POINTS} points; it may go on."
+
+    def _stuck(self) -> str:
+        """Why no further point was found."""
+        if self.folds:
+            return ("No further point was found: a limit begins or ceases to bind here, and behind a fold no branch is "
+                    "followed beyond that; or the curve degenerates.")  # fmt: skip
+        return ("No further point was found: a limit begins or ceases to bind here and nothing continues the curve "
+                "beyond it, or the curve degenerates.")  # fmt: skip
+
+    def _restarted(self, here: _At) -> _At | None:
+        """The branch a little further on, with the limits that are active there; None where it is not found again."""
+        if self.folds or here.path.program.compiled.lowered.problem.seek is Seek.STATIONARY:
+            return None
+        way = float(np.sign(here.tangent[-1]))
+        for share in FURTHER:
+            at = here.at + way * share * self.size
+            if (at - self.to) * way > 0:
+                at = self.to
+            found = self._minimised(here.path, at, way)
+            if found is not None:
+                change = (found.path.z - here.path.z) / here.path.program.scale
+                if np.sqrt(np.mean(change**2)) <= SAME_CURVE:
+                    return found
+        return None
+
+    def _minimised(self, path: Trajectory, at: float, way: float) -> _At | None:
+        """The minimum near a path for a value of the constant, corrected with the limits that are active there."""
+        program = restated(path.program, with_constants(path.program.compiled, {self.constant: at}))
+        minimum = minimise(program, as_start(path), deadline=self.deadline)
+        if minimum.outcome not in SOLVED:
+            return None
+        try:
+            found = self._corrected(trajectory(program, minimum), at, None, 0.0)
+        except SingularError:
+            return None
+        return None if found is None else _turned(found[0], way)
 
     def _past(self, point: _At) -> bool:
         return bool((point.at - self.to) * np.sign(self.to - self.began) >= 0)
@@ -157,15 +212,16 @@ class _Follower:
 
     def _corrected(self, path: Trajectory, at: float, tangent: Array | None, step: float) -> tuple[_At, int] | None:
         """Newton's method from a predictor; without a tangent at a fixed value of the constant."""
-        free, active = _unknowns(path)
+        before = Response(path)
+        free, active = before.free, before.active
         begun = self._vector(path, free, active, at)
         vector = begun if tangent is None else begun + step * tangent
         weights = np.concatenate([np.full(len(free), 1 / max(len(free), 1)), np.zeros(len(active)), [1.0]])
         row = np.append(np.zeros(len(vector) - 1), 1.0) if tangent is None else weights * tangent
         for count in range(STEPS + 1):
-            moved = self._moved(path, free, active, vector)
+            moved = self._moved(before, vector)
             system = Response(moved)
-            if len(system.free) != len(free) or len(system.active) != len(active):
+            if not np.array_equal(system.free, free) or not np.array_equal(system.active, active):
                 return None
             residual = np.append(system.residual(), row @ (vector - begun) - (0.0 if tangent is None else step))
             if not np.isfinite(residual).all():
@@ -185,21 +241,19 @@ class _Follower:
         rows = path.row_multipliers * program.row_scale / abs(program.value_scale)
         return np.concatenate([(path.z / program.scale)[free], rows[active], [at / self.size]])
 
-    def _moved(self, path: Trajectory, free: Indices, active: Indices, vector: Array) -> Trajectory:
-        """The path with these variables and multipliers, for this value of the constant."""
-        at = float(vector[-1] * self.size)
+    def _moved(self, before: Response, vector: Array) -> Trajectory:
+        """The path with these variables and multipliers, for this value of the constant; what rests on limits does."""
+        at, path, free = float(vector[-1] * self.size), before.path, before.free
         program = restated(path.program, with_constants(path.program.compiled, {self.constant: at}))
         z, rows = path.z / program.scale, np.zeros(program.rows.count)
-        fixed = program.lower == program.upper
-        z[fixed] = program.lower[fixed]
-        z[free], rows[active] = vector[: len(free)], vector[len(free) : -1]
-        return _at_variables(program, z, rows)
+        z = np.where(before.sides < 0, program.lower, np.where(before.sides > 0, program.upper, z))
+        z[free], rows[before.active] = vector[: len(free)], vector[len(free) : -1]
+        return _at_variables(program, z, rows, before.sides != 0)
 
 
-def _unknowns(path: Trajectory) -> tuple[Indices, Indices]:
-    """The variables that are free and the rows that are equalities; inequalities must not bind."""
-    system = Response(path)
-    return system.free, system.active
+def _turned(point: _At, way: float) -> _At:
+    """The point with its tangent this way along the constant."""
+    return point if point.tangent[-1] * way >= 0 else replace(point, tangent=-point.tangent)
 
 
 def _bordered(matrix: Any, column: Array, row: Array) -> Callable[[Array], Array]:
@@ -214,10 +268,11 @@ def _bordered(matrix: Any, column: Array, row: Array) -> Callable[[Array], Array
         raise SingularError from error
 
 
-def _at_variables(program: Program, z: Array, rows: Array) -> Trajectory:
-    """The trajectory of scaled variables and multipliers."""
+def _at_variables(program: Program, z: Array, rows: Array, resting: NDArray[np.bool_]) -> Trajectory:
+    """The trajectory of scaled variables and multipliers; variables that are `resting` on a limit push against it."""
+    bounds = np.where(resting, -slopes_of(program, z, rows), 0.0)
     value = program.numbers.value(z)
-    return trajectory(program, Minimum(Outcome.SOLVED, z, value, np.zeros(len(z)), rows, 0, 0.0, 0.0, "Newton"))
+    return trajectory(program, Minimum(Outcome.SOLVED, z, value, bounds, rows, 0, 0.0, 0.0, "Newton"))
 
 
 def _finer(path: Trajectory) -> Trajectory:
@@ -228,4 +283,5 @@ def _finer(path: Trajectory) -> Trajectory:
     program = make_program(compiled, mesh, where, carried.z, path.program.scales)
     start = carried.onto(program)
     rows = np.zeros(program.rows.count) if start.multipliers is None else start.multipliers
-    return _at_variables(program, start.z, np.where(program.row_lower == program.row_upper, rows, 0.0))
+    equal = program.row_lower == program.row_upper
+    return _at_variables(program, start.z, np.where(equal, rows, 0.0), program.lower == program.upper)

@@ -25,7 +25,7 @@ from solvers.solution import MeshStep
 from solvers.transcription.functions import Compiled, with_constants
 from solvers.transcription.numbers import Numbers
 from solvers.transcription.program import Program, restated
-from solvers.transcription.trajectory import Trajectory, trajectory
+from solvers.transcription.trajectory import Trajectory, as_start, trajectory
 
 Array = NDArray[np.float64]
 
@@ -100,15 +100,14 @@ class Neighbours:
     def _start(self, near: Solved, at: Array, far: Solved | None) -> Start:
         """The neighbour's solution continued to another point."""
         path = near.pursuit.paths[-1]
-        now = _scaled(path)
+        now = as_start(path)
         if far is not None and far.pursuit.paths[-1].program.numbers.alike(path.program.numbers):
             way = near.at - far.at
             share = float((at - near.at) @ way / (way @ way))
-            before = _scaled(far.pursuit.paths[-1])
-            return Start(*(one + share * (one - two) for one, two in zip(now, before, strict=True)))
+            return _straight_on(now, as_start(far.pursuit.paths[-1]), share)
         changes = dict(zip(self.names, (at - near.at).tolist(), strict=True))
         z, rows = _moved(path, {name: change for name, change in changes.items() if change})
-        return Start(now[0] + z, now[1], now[2] + rows)
+        return replace(now, z=now.z + z, multipliers=_given(now.multipliers) + rows)
 
     def _measured(self, pursuit: Pursuit) -> _Measured:
         """The errors of the mesh of a pursuit."""
@@ -150,6 +149,25 @@ class Neighbours:
         return pursuit if pursuit.end in (End.CONVERGED, End.SETTLED) else None
 
 
+def _straight_on(now: Start, before: Start, share: float) -> Start:
+    """A start as far beyond `now` as that is beyond `before`, times `share`."""
+    return Start(
+        *(
+            _given(one) + share * (_given(one) - _given(two))
+            for one, two in (
+                (now.z, before.z),
+                (now.bound_multipliers, before.bound_multipliers),
+                (now.multipliers, before.multipliers),
+            )
+        )
+    )
+
+
+def _given(values: Array | None) -> Array:
+    assert values is not None, "a warm start has multipliers"
+    return values
+
+
 def _moved(path: Trajectory, changes: Mapping[str, float]) -> tuple[Array, Array]:
     """The first-order change of the variables and of the rows' multipliers (scaled); none where it is undetermined."""
     from solvers.answers.response import Response, SingularError  # here, as SciPy is loaded only where it is needed
@@ -181,11 +199,3 @@ def _with_room(program: Program, start: Start) -> Compiled:
             parameters[own[0]] = replace(parameters[own[0]], lower=float(low), upper=float(high))
     lowered = replace(compiled.lowered, problem=replace(problem, parameters=tuple(parameters)))
     return replace(compiled, lowered=lowered)
-
-
-def _scaled(path: Trajectory) -> tuple[Array, Array, Array]:
-    """The variables, the multipliers of bounds and of rows, as the program scales them."""
-    program, size = path.program, abs(path.program.value_scale)
-    free = program.lower < program.upper
-    bounds = np.where(free, path.bound_multipliers * program.scale / size, 0.0)
-    return path.z / program.scale, bounds, path.row_multipliers * program.row_scale / size

@@ -108,7 +108,9 @@ def trajectory(program: Program, minimum: Minimum) -> Trajectory:
     point = program.compiled.point
     count = len(where.fractions)
     sign_and_size = abs(program.value_scale)
-    bounds = np.where(program.lower == program.upper, -_slopes(program, minimum), minimum.bound_multipliers)
+    bounds = np.where(
+        program.lower == program.upper, -slopes_of(program, minimum.z, minimum.multipliers), minimum.bound_multipliers
+    )
     rows = minimum.multipliers / program.row_scale * sign_and_size  # multipliers of the rows in SI
     defects = rows[: count * point.states].reshape(count, point.states)
     weights = np.concatenate([i.scheme.weights for i in program.mesh.intervals])
@@ -139,14 +141,22 @@ def place_values(problem: Problem, where: Layout, z: Array) -> Array:
                      for place, index, moves in zip(problem.places, where.places, free, strict=True)])  # fmt: skip
 
 
-def _slopes(program: Program, minimum: Minimum) -> Array:
+def slopes_of(program: Program, z: Array, multipliers: Array) -> Array:
     """The slope of f + multipliers.g in every variable (scaled).
 
     The minimiser takes fixed variables out and knows no multipliers of theirs: this slope, negative, is what they are.
     """
     numbers = program.numbers
-    pushed = numbers.jacobian_pattern.times_from_left(minimum.multipliers, numbers.jacobian(minimum.z))
-    return numbers.gradient(minimum.z) + pushed
+    pushed = numbers.jacobian_pattern.times_from_left(multipliers, numbers.jacobian(z))
+    return numbers.gradient(z) + pushed
+
+
+def as_start(path: Trajectory) -> Start:
+    """A solved path as a warm start of its own program, or of one that differs in constants and limits only."""
+    program, size = path.program, abs(path.program.value_scale)
+    free = program.lower < program.upper
+    bounds = np.where(free, path.bound_multipliers * program.scale / size, 0.0)
+    return Start(path.z / program.scale, bounds, path.row_multipliers * program.row_scale / size)
 
 
 def curve(path: Trajectory) -> Curve:

@@ -79,6 +79,26 @@ def test_where_a_limit_begins_to_bind_the_branch_ends_and_says_so():
     assert branch.end.startswith("No further point was found")
 
 
+def test_a_branch_goes_on_where_limits_begin_to_bind():
+    # Least squares at every t under u <= 1: u = min(D t, 1); the integral of (u - D t)^2 is (D - 1)^3/(3 D) for D > 1.
+    problem = stated(constants={"D": 0.5}, endpoints=["x(0) = 0"], constraints=["u <= 1"],
+                     functional={"integrand": "1 + (u - D*t)^2"})  # fmt: skip
+    branch = followed(problem, "D", 2.0)
+    assert branch.points[-1].at > 1.5
+    assert branch.end.startswith("The branch reaches the value asked for. On the way limits began or ceased to bind")
+    for point in branch.points:
+        expected = 1 + max(point.at - 1, 0.0) ** 3 / (3 * point.at)
+        assert point.value == pytest.approx(expected, abs=1e-5)
+
+
+def test_a_branch_begins_where_limits_bind_already():
+    problem = stated(constants={"D": 2.0}, endpoints=["x(0) = 0"], constraints=["u <= 1"],
+                     functional={"integrand": "1 + (u - D*t)^2"})  # fmt: skip
+    branch = followed(problem, "D", 0.5)
+    assert branch.points[0].at == 2.0 and branch.points[-1].at < 0.8
+    assert branch.end.startswith("The branch reaches the value asked for.")
+
+
 def test_a_stop_ends_the_branch():
     problem = replace(film(), continuation=Continuation("h", 2.0))
     branch = solve(problem, lambda progress: progress.point is not None and progress.point[0] == 3).branch
