@@ -109,7 +109,7 @@ def _from_starts(
     problem: Problem, watch: Watch | None, together: Together, form: Form = in_parametric_form
 ) -> Solution:
     """Solve a problem without arcs from as many starts as are asked for, and sweep it where that is asked for."""
-    began = time.perf_counter()
+    began, idle = time.perf_counter(), time.process_time()
     deadline = in_seconds(problem.options.time_limit)
     if problem.options.starts > 1:
         solve_one = partial(_solve_once, form=form)
@@ -118,6 +118,7 @@ def _from_starts(
         found = _found(problem, watch, deadline, form) if varied else None  # variants begin at the default guess
     else:
         found = _found(problem, watch, deadline, form)
+        found = replace(found, work=time.process_time() - idle)
         solution = _solution(problem, found, began)
     if problem.sweeps and found is not None:
         solution = _with_sweep(solution, problem, found, watch, deadline, form)

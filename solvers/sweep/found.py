@@ -14,10 +14,14 @@ from solvers.solution import Check, Solution
 
 @dataclass(frozen=True, slots=True)
 class Found:
-    """The pursuit of the form in which a problem was solved; `gauged` says how where that is parametric."""
+    """The pursuit of the form in which a problem was solved; `gauged` says how where that is parametric.
+
+    `work` is the processor time in seconds that it took, where somebody needs to know.
+    """
 
     pursuit: Pursuit
     gauged: Gauged | None
+    work: float = float("inf")
 
 
 @dataclass(frozen=True, slots=True)

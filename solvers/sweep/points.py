@@ -9,7 +9,7 @@ solved from the start.  Points that stay without a verdict are looked at once mo
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -34,6 +34,8 @@ ORDER = (
 WEAK = (None, Verdict.NOT_VERIFIED, Verdict.BEST_FOUND, Verdict.NOT_A_MINIMUM, Verdict.NOT_A_MAXIMUM)
 """Verdicts after which a point is looked for from elsewhere, and at last given a solve of its own."""
 
+REPAIR = 2.0
+"""How many times the work of the problem as it stands a repair may take: a solve from nothing comes next."""
 FAIR = 3.0
 """How many times its even share of the time left a point may take to be repaired, and to be solved from nothing."""
 
@@ -57,11 +59,15 @@ def sweep(
 
 @dataclass(frozen=True, slots=True)
 class _Point:
-    """What was found at a point and what it was called; `glanced` at where checks were taken over."""
+    """What was found at a point and what it was called; `glanced` at where checks were taken over.
+
+    `straight`: the first way led to it.
+    """
 
     origin: Origin
     solution: Solution
     glanced: bool
+    straight: bool = True
 
     @property
     def weak(self) -> bool:
@@ -98,15 +104,20 @@ class _Sweep:
             tried.append(way)
             if not way.weak:
                 break
-        return min(tried, key=lambda point: ORDER.index(point.solution.verdict))
+        best = min(tried, key=lambda point: ORDER.index(point.solution.verdict))
+        return replace(best, straight=len(tried) == 1)
 
     def _ways(self, index: Index, at: Array) -> Iterator[_Point]:
         """From a neighbour, from the last sound point, from nothing."""
         drawn = index in self.grid.kept
         closely = self.grid.away(index) % CLOSELY == 0 or drawn
         for near, far, before in self._origins(index):
-            for step in self.stepper.steps(at, near, far, self._room()):
-                known = taken_over(before, step.convex) if before is not None and step.same and not closely else {}
+            room = self._room().within(REPAIR * self.base.work)
+            for step in self.stepper.steps(at, near, far, room):
+                known = {}
+                if before is not None and step.same and not closely:
+                    held = bool(step.found.pursuit.compiled.lowered.problem.held)
+                    known = taken_over(before, step.convex, held)
                 solution = self.tools.judge(self.stepper.stated(at), step.found, drawn, known)
                 yield _Point(Origin(at, step.found), solution, bool(known))
         problem = self.stepper.stated(at)
@@ -137,12 +148,12 @@ class _Sweep:
             yield self.points[near].origin, None, self.points[near].solution
 
     def reconsidered(self, index: Index) -> Iterator[tuple[Index, SweepPoint]]:
-        """The points before one that was looked at closely and is no longer what they were said to be."""
+        """The points before one that was looked at closely, where it is not what they were said to be, or not there."""
         near = next((n for n, _ in self.grid.behind(index) if n in self.points), None)
         own = self.points.get(index)
         if near is None or (own is not None and own.glanced):
             return
-        if own is not None and own.solution.verdict is self.points[near].solution.verdict:
+        if own is not None and own.straight and own.solution.verdict is self.points[near].solution.verdict:
             return
         for other, point in [(other, point) for other, point in self.points.items() if point.glanced]:
             at, found = point.origin.at, point.origin.found

@@ -4,12 +4,13 @@ Every so-maniest point is looked at closely: all its checks are made.  Between t
 by far at the neighbour is taken over on the same mesh: the figures change smoothly along a branch.  The second order is
 taken over only where the minimiser's matrix says so too: at the end of a minimisation without a correction it has the
 inertia of a minimum (Waechter, Biegler 2006, section 3.1; from memory), which along a branch changes only where the
-matrix becomes singular.
+matrix becomes singular.  Where limits are held along arcs, whether they are held rightly is looked at each time: the
+structure may change between any two points.
 """
 
 from __future__ import annotations
 
-from solvers.checks import curvature, limits, lower_bound, motion
+from solvers.checks import curvature, free_ends, limits, lower_bound, motion, stationarity
 from solvers.checks import refinement as refinement_check
 from solvers.solution import Check, Solution, Status
 
@@ -17,16 +18,19 @@ CLOSELY = 8
 """Every so-maniest point is looked at closely."""
 ALWAYS = {motion.NAME, limits.NAME, refinement_check.NAME}
 """The checks that are made at every point."""
+OF_STRUCTURE = {stationarity.NAME, free_ends.NAME}
+"""And those that are made where limits are held."""
 BY_FAR = 0.1
 """Figures below this share of their threshold have passed by far."""
 
 
-def taken_over(before: Solution, convex: bool) -> dict[str, Check]:
-    """The checks of a neighbour on the same mesh that a point takes over."""
+def taken_over(before: Solution, convex: bool, held: bool) -> dict[str, Check]:
+    """The checks of a neighbour on the same mesh that a point takes over; `held`: limits are held along arcs."""
+    always = ALWAYS | OF_STRUCTURE if held else ALWAYS
     return {
         check.name: check
         for check in before.checks
-        if check.name not in ALWAYS and _by_far(check) and (check.name != curvature.NAME or convex)
+        if check.name not in always and _by_far(check) and (check.name != curvature.NAME or convex)
     }
 
 

@@ -5,6 +5,9 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
+from service import samples
+from service.assemble import assemble
+from service.spec import read
 from solvers import solve as single
 from solvers.problem import Sweep
 from solvers.solution import Verdict
@@ -132,6 +135,17 @@ def test_where_a_limit_begins_to_bind_the_structure_is_repaired_near_the_neighbo
         assert abs(point.value - expected) <= point.value_error
         assert point.verdict is Verdict.LOCAL_MINIMUM, point.failed
     assert len(from_nothing) <= 2  # the problem as it stands, and perhaps a point just beyond the change
+
+
+def test_between_points_looked_at_closely_no_structure_is_kept_that_another_betters():
+    # The crucible loses two of its eight switches near 2.965 m; the old structure keeps a solution, which is no minimum.
+    problem = assemble(read(samples.text("crucible").encode()))
+    values = [2.959, 2.961, 2.963, 2.97, 2.98, 2.99, 3.0]
+    points = solve(swept(problem, D=values)).sweep
+    constants = tuple(replace(c, value=2.961) if c.name == "D" else c for c in problem.constants)
+    alone = solve(replace(problem, constants=constants))
+    assert alone.verdict is points[1].verdict is Verdict.LOCAL_MINIMUM
+    assert abs(points[1].value - alone.value) <= points[1].value_error + alone.value_error
 
 
 def test_a_square_is_minimised_only_where_the_integrand_is_positive():
