@@ -138,7 +138,7 @@ def test_where_a_limit_begins_to_bind_the_structure_is_repaired_near_the_neighbo
 
 
 def test_between_points_looked_at_closely_no_structure_is_kept_that_another_betters():
-    # The crucible loses two of its eight switches near 2.965 m; the old structure keeps a solution, which is no minimum.
+    # The crucible loses two of its eight switches near 2.965 m; the old structure keeps a solution that is no minimum.
     problem = assemble(read(samples.text("crucible").encode()))
     values = [2.959, 2.961, 2.963, 2.97, 2.98, 2.99, 3.0]
     points = solve(swept(problem, D=values)).sweep
