@@ -24,6 +24,7 @@ from solvers.diagnosis import diagnose
 from solvers.forms.arc_guess import with_sketches
 from solvers.forms.beside import side_by_side
 from solvers.forms.broken import with_corner
+from solvers.forms.cut import cut_at_switches
 from solvers.forms.gauge import Form, Gauged, in_parametric_form
 from solvers.forms.gauge_arcs import in_parametric_form_by_arcs
 from solvers.forms.graph import as_graph, checks_on_graph, prices_of_original, uprights
@@ -39,7 +40,7 @@ from solvers.search.escape import escapes
 from solvers.search.pursuit import go_on, pursue
 from solvers.search.record import End, Pursuit
 from solvers.search.sharpen import sharpen
-from solvers.search.structure import jumps_at_breaks, present_switches
+from solvers.search.structure import at_the_edge, held_rightly, jumps_at_breaks, present_switches
 from solvers.solution import BranchPoint, Change, Check, Price, Progress, Slope, Solution, SwitchPlace, Verdict, Watch
 from solvers.starts.extremals import solve_from_starts
 from solvers.starts.guess import guesses
@@ -102,7 +103,34 @@ def _of_arcs(problem: Problem, watch: Watch | None, together: Together) -> Solut
         return watch is not None and watch(replace(progress, breaks=None))
 
     form = partial(in_parametric_form_by_arcs, beside)
-    return rejoin(beside, _from_starts(with_sketches(beside), hear, together, form))
+    found = rejoin(beside, _from_starts(with_sketches(beside), hear, together, form))
+    return _with_own_switches(problem, found, hear) or found
+
+
+def _with_own_switches(problem: Problem, found: Solution, watch: Watch) -> Solution | None:
+    """What comes of arcs that are cut where controls switch, where beside each other nothing could be shown."""
+    began, options = time.perf_counter(), problem.options
+    left = options.time_limit - found.times.get("solve", 0.0)
+    several = options.starts > 1 or problem.sweeps or problem.continuation or problem.observations
+    if found.verdict not in NO_OPTIMUM_FOUND or several or left <= 0:
+        return None
+    cut = cut_at_switches(problem, found)
+    if cut is None:
+        return None
+    pursuit = pursue(cut.problem, watch, in_seconds(left))
+    path = pursuit.paths[-1] if pursuit.solved else None
+    if path is None or pursuit.end is not End.CONVERGED or at_the_edge(path) or not held_rightly(path):
+        return None
+    told = _solution(cut.problem, Found(pursuit, None), began)
+    if told.verdict in NO_OPTIMUM_FOUND:
+        return None
+    record = replace(
+        told,
+        meshes=(*found.meshes, *told.meshes),
+        iterations=found.iterations + told.iterations,
+        times={stage: seconds + found.times.get(stage, 0.0) for stage, seconds in told.times.items()},
+    )
+    return cut.told(rejoin(cut.beside, record))
 
 
 def _from_starts(

@@ -40,6 +40,7 @@ _REASONS = {
         "The curve degenerates",
         "A limit on the slope, or a cost that grows faster with it, keeps it whole.",
     ),
+    "runs away": ("The curve runs away", "A bound, or one more condition, may be missing."),
     "no progress": ("The search got stuck", ""),
     "points limit": ("The mesh reached its limit before the tolerance", ""),
     "failed": (

@@ -12,6 +12,7 @@ from solvers.checks import free_ends
 from solvers.curve import Curve
 from solvers.forms.arcs_in_t import OnCommon
 from solvers.forms.beside import Beside, Piece
+from solvers.search.structure import SWITCH
 from solvers.solution import (
     ArcCurve,
     Change,
@@ -173,7 +174,9 @@ def _finding(beside: Beside, finding: Finding, where: Where) -> Finding:
 def _notes(beside: Beside, curves: tuple[ArcCurve, ...]) -> Iterator[str]:
     """How the arcs were treated, and which of them vanished."""
     problem = beside.original
-    orders = [c.label for c in beside.problem.endpoints if not c.pointer and not c.equality]
+    orders = [
+        c.label for c in beside.problem.endpoints if not c.pointer and not c.equality and f"{SWITCH} " not in c.label
+    ]
     if orders:
         yield f"Kept in order: {', '.join(orders)}."
     kept = {curve.name for curve in curves}
