@@ -9,7 +9,9 @@ large as the curve itself could gain by it:
 - *costates*: the weak form of p' = -H_x on every interval, so that no noise is differentiated; the variation vanishes
   towards an end where the state is fixed, as it must, which also gives infinite costates there their right weight;
   multipliers of constraints on states count as measures, so a costate may jump where such a constraint is touched;
-- *multipliers*: of inequalities, times the distance from their limit, which must vanish.
+- *multipliers*: of inequalities, times the distance from their limit, which must vanish;
+- *gain*: what a part of that step of the controls gains in H, averaged over the curve; a few times the tolerance of the
+  value is its limit, however short the stretch is on which it could be had.
 
 The threshold is the square root of the tolerance: at a minimum a relative gradient of e leaves a gain of the order e^2
 in the value, and polynomials of control and costate are one order less accurate than those of the states.
@@ -43,7 +45,7 @@ Finding = tuple[float, float, str, str]
 def check(sampler: Sampler) -> Check:
     """The largest of the three figures against the square root of the tolerance."""
     threshold = float(np.sqrt(sampler.tolerance))
-    findings = [*_controls(sampler), *_costates(sampler), *_multipliers(sampler)]
+    findings = [*_controls(sampler), *_costates(sampler), *_multipliers(sampler), *_gain(sampler, threshold)]
     if not findings:
         return Check(NAME, Status.NOT_APPLICABLE, "There is no function to vary.")
     figure, place, subject, sentence = max(findings, key=lambda finding: finding[0])
@@ -69,6 +71,34 @@ def _controls(sampler: Sampler) -> list[Finding]:
     return findings
 
 
+PARTS = (1.0, 0.3, 0.1, 0.03)
+"""Parts of the projected step that are tried."""
+ROOM = 10.0
+"""How much more than the tolerance of the value they may gain."""
+
+
+def _gain(sampler: Sampler, threshold: float) -> list[Finding]:
+    """The mean gain of the best part of the projected step, so scaled that its limit is the threshold."""
+    n, m, sample = sampler.point.states, sampler.point.controls, sampler.halves
+    if m == 0:
+        return []
+    weights = sampler.weights(sample)
+    length = (sampler.end - sampler.start)[sample.interval]
+    way = _projected(sampler) - sample.v[:, n : n + m]
+    own = (sampler.halves_outputs * weights).sum(axis=1)
+    gains = np.zeros(len(own))
+    for part in PARTS:
+        v = sample.v.copy()
+        v[:, n : n + m] += part * way
+        there = (mapped(sampler.point.value, v, sample.d) * weights).sum(axis=1)
+        gains = np.fmax(gains, (own - there) / length / sampler.power)
+    gains[(sample.interval == 0) | (sample.interval == sampler.count - 1)] = 0.0  # slopes may be infinite at an end
+    figure, worst = float(sampler.mean(gains)), int(np.argmax(gains * np.abs(sample.measure)))
+    name = sampler.control_names[int(np.argmax(np.abs(way[worst]) / sampler.control_sizes))]
+    return [(threshold * figure / (ROOM * sampler.tolerance), float(sample.places[worst]), name,
+             f"Other values of {name} could gain {figure:.1e} of the functional.")]  # fmt: skip
+
+
 def slopes_of_hamiltonian(sampler: Sampler) -> Array:
     """H_u on the grid of halves, scaled: the relative change of H by a change of each control as large as itself."""
     n, m = sampler.point.states, sampler.point.controls
@@ -79,10 +109,14 @@ def slopes_of_hamiltonian(sampler: Sampler) -> Array:
 def control_steps(sampler: Sampler) -> Array:
     """The step of the projected gradient on the grid of halves, relative to the size of each control."""
     n, m = sampler.point.states, sampler.point.controls
+    return np.abs(_projected(sampler) - sampler.halves.v[:, n : n + m]) / sampler.control_sizes
+
+
+def _projected(sampler: Sampler) -> Array:
+    """The controls on the grid of halves after a step against the gradient of H, inside their bounds."""
+    n, m = sampler.point.states, sampler.point.controls
     controls, sizes = sampler.halves.v[:, n : n + m], sampler.control_sizes
-    slopes = _finite(slopes_of_hamiltonian(sampler))
-    moved = np.clip(controls - sizes * slopes, sampler.bounds[2], sampler.bounds[3])
-    return np.abs(moved - controls) / sizes
+    return np.clip(controls - sizes * _finite(slopes_of_hamiltonian(sampler)), sampler.bounds[2], sampler.bounds[3])
 
 
 def _costates(sampler: Sampler) -> list[Finding]:

@@ -78,7 +78,7 @@ def with_structure(base: Pursuit, path: Trajectory, watch: Watch | None, deadlin
     """
     linear = [base.compiled.lowered.controls[index] for index in linear_controls(base.compiled)]
     for _ in range(ROUNDS):
-        found = sorted([*switches(path), *present_switches(path)], key=lambda switch: switch.place)
+        found = sorted([*switches(path, linear), *present_switches(path)], key=lambda switch: switch.place)
         changed = with_switches(base.problem, found, path, linear)
         if changed is None:
             return None

@@ -7,6 +7,7 @@ where it happens the curve has a corner, and no polynomial across it converges. 
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from itertools import pairwise
 
@@ -42,6 +43,7 @@ class Switch:
     high: float
     touching: tuple[Quantity, int] | None = None  # with the side that is touched
     of: frozenset[str] = frozenset()  # the unknowns that switch there, where that is known
+    bent: Quantity | None = None  # the control that does not act linearly: two of its switches are never one
 
 
 @dataclass(frozen=True, slots=True)
@@ -83,9 +85,12 @@ def signals(path: Trajectory) -> list[Signal]:
     return found
 
 
-def switches(path: Trajectory) -> list[Switch]:
-    """The switches of a solved mesh, in order; none where there are too many to be a structure."""
-    found = [switch for signal in signals(path) for switch in _changes(path, signal)]
+def switches(path: Trajectory, linear: Sequence[Quantity]) -> list[Switch]:
+    """The switches of a solved mesh, in order; none where there are too many to be a structure.
+
+    `linear` are the controls that act linearly in the problem itself, of which this may be a softened form.
+    """
+    found = [switch for signal in signals(path) for switch in _changes(path, signal, linear)]
     merged = _merged(sorted(found, key=lambda switch: switch.place), path)
     return merged if len(merged) <= MOST_SWITCHES else []
 
@@ -110,12 +115,13 @@ def jumps_at_breaks(path: Trajectory) -> bool:
     return bool((leaps > LEAP * np.abs(path.controls[:, limited]).max(axis=0, initial=1e-300)).any())
 
 
-def _changes(path: Trajectory, signal: Signal) -> list[Switch]:
+def _changes(path: Trajectory, signal: Signal, linear: Sequence[Quantity]) -> list[Switch]:
     """Places where the label of a signal changes.
 
-    A short passage of a control between two limits is one switch; a state that is at its limit for a point or two only
-    touches it there.
+    A short passage of a control between two limits is one switch where it acts linearly; else it may not jump, and the
+    passage stays.  A state that is at its limit for a point or two only touches it there.
     """
+    bent = not signal.state and signal.quantity not in linear
     states = path.program.compiled.lowered.states
     smooth = signal.state and (signal.quantity[0], signal.quantity[1] + 1) in states
     labels, points, where = signal.labels, path.points, path.program.layout
@@ -126,7 +132,7 @@ def _changes(path: Trajectory, signal: Signal) -> list[Switch]:
     for first, last in _runs(labels):
         inner = first > 0 and last < len(labels) - 1
         short = owner[last] - owner[first] <= 1
-        if inner and short and labels[first] == 0 and labels[first - 1] != labels[last + 1]:
+        if inner and short and not bent and labels[first] == 0 and labels[first - 1] != labels[last + 1]:
             continue
         brief = last - first < 2 or points[last] - points[first] < TOUCH * span
         if signal.state and labels[first] != 0 and brief:
@@ -142,11 +148,14 @@ def _changes(path: Trajectory, signal: Signal) -> list[Switch]:
             continue
         low, high = float(points[left]), float(points[right])
         place = (low + high) / 2
+        if labels[left] * labels[right] == -1 and bent:
+            found += [Switch(place, low, high, bent=signal.quantity) for place in (low, high)]
+            continue
         if labels[left] * labels[right] == -1:
             start, end = int(owner[left]), int(owner[right])
             low, high = float(path.breaks[start]), float(path.breaks[end + 1])
             place = _clean_jump(path, signal, slice(where.first[start], where.first[end + 1]), low, high, labels[left])
-        found.append(Switch(place, low, high))
+        found.append(Switch(place, low, high, bent=signal.quantity if bent else None))
     return found
 
 
@@ -174,7 +183,8 @@ def _merged(found: list[Switch], path: Trajectory) -> list[Switch]:
         if switch.touching is not None or np.abs(path.places - switch.place).min() < 1e-3 * span:
             continue
         width = float(widths[np.clip(np.searchsorted(path.breaks, switch.place) - 1, 0, len(widths) - 1)])
-        if groups and switch.place - groups[-1][-1].place < min(width, 0.05 * span):
+        apart = groups and switch.bent is not None and any(other.bent == switch.bent for other in groups[-1])
+        if groups and not apart and switch.place - groups[-1][-1].place < min(width, 0.05 * span):
             groups[-1].append(switch)
         else:
             groups.append([switch])
