@@ -108,7 +108,8 @@ def outcome_of(document: Path, figures: tuple[Figure, ...] = (), longest: float 
         if not curves:
             return None
         place = curves[-1].breaks[-1] if asked.place == "end" else float(asked.place) * step
-        curve = next(curve for curve in curves if place <= curve.breaks[-1] or curve is curves[-1])
+        rounding = 1e-9 * abs(curves[-1].breaks[-1] - curves[0].breaks[0])  # a junction that was found belongs to it
+        curve = next(curve for curve in curves if place <= curve.breaks[-1] + rounding or curve is curves[-1])
         name = asked.subject.rstrip("'")
         primes = len(asked.subject) - len(name)
         known = asked.subject in curve.functions
