@@ -74,6 +74,13 @@ class Beside:
                 text = text.replace(f"{ON}{piece.label}{end}", f"({label})")
         return text
 
+    def by_arc(self, text: str) -> str:
+        """A text with sides of places and with the names of arcs, whatever their pieces are called."""
+        text = self.with_sides(text)
+        for piece in reversed(self.pieces):  # part 12 before part 1
+            text = text.replace(ON + piece.label, ON + self.original.arcs[piece.arc].name)
+        return text
+
     def told(self, text: str) -> str:
         """A text about copies as one about what they are copies of."""
         text = self.with_sides(text)

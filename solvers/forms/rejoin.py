@@ -143,13 +143,11 @@ def _prices(beside: Beside, prices: Iterable[Price]) -> Iterator[Price]:
 
 def _check(beside: Beside, check: Check, where: Where) -> Check:
     _, piece = beside.parted(check.subject)
-    sentence = beside.with_sides(check.sentence)
+    sentence = beside.by_arc(check.sentence)
     if check.name == free_ends.NAME and check.status is Status.PASSED:
         sentence += " At junctions the costates jump by the prices of what is asked there, and no more; the Hamiltonian"
         sentence += " is continuous where the place is free."
-    return replace(
-        check, place=where.at(piece, check.place), subject=beside.with_sides(check.subject), sentence=sentence
-    )
+    return replace(check, place=where.at(piece, check.place), subject=beside.by_arc(check.subject), sentence=sentence)
 
 
 def _switches(beside: Beside, found: Solution, where: Where) -> Iterator[SwitchPlace]:

@@ -81,6 +81,16 @@ def test_copies_are_told_by_their_name_and_arc():
     assert names == {"v", "m"}
 
 
+def test_texts_name_arcs_and_not_their_pieces():
+    endpoints = ["x(0) = 0", *(f"x({k}/24) <= 9" for k in range(1, 12)), "x(1) = 1"]
+    arcs = [{"name": "one", "from": 0, "to": 0.5}, {"name": "two", "from": 0.5, "to": 1}]
+    beside = side_by_side(stating.stated(endpoints=endpoints, arcs=arcs))
+    assert beside.pieces[11].label == "one, part 12"
+    assert beside.by_arc("x on one, part 12 misses") == "x on one misses"
+    assert beside.by_arc("x on one, part 1(end)") == "x(1/24-)"
+    assert beside.by_arc("x on two") == "x on two"
+
+
 def test_an_arc_whose_name_begins_like_another_keeps_its_own_copies():
     arcs = [{"name": "up", "from": 0, "to": 0.5}, {"name": "up again", "from": 0.5, "to": 1}]
     beside = side_by_side(stating.stated(arcs=arcs))
