@@ -332,7 +332,9 @@ def _solution(
     if verdict in PROVED and (gap := lower_bound.gap(made)) is not None:  # the bound says it better than the meshes
         value_error = min(value_error, gap * pursuit.value_size + FLOOR * abs(path.program.value_scale))
         value_error_or_none, diagnosis = value_error, None
-    shape, multipliers = curve(path), Curve(path.breaks, {})
+    shape = multipliers = Curve(path.breaks, {})
+    if drawn or gauged is not None:
+        shape = curve(path)
     bought: tuple[Price, ...] = ()
     depends: tuple[Slope, ...] = ()
     altered: tuple[Change, ...] = ()

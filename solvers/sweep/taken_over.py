@@ -16,9 +16,10 @@ from solvers.solution import Check, Solution, Status
 
 CLOSELY = 8
 """Every so-maniest point is looked at closely."""
-ALWAYS = {motion.NAME, limits.NAME, refinement_check.NAME}
-"""The checks that are made at every point."""
-OF_STRUCTURE = {stationarity.NAME, free_ends.NAME}
+ALWAYS = {limits.NAME, refinement_check.NAME}
+"""The checks that are made at every point.  The motion, integrated anew, is looked at closely only: the local errors,
+which are found for every point, would tell before it."""
+OF_STRUCTURE = {motion.NAME, stationarity.NAME, free_ends.NAME}
 """And those that are made where limits are held."""
 BY_FAR = 0.1
 """Figures below this share of their threshold have passed by far."""
