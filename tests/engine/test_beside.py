@@ -82,8 +82,8 @@ def test_a_start_that_breaks_is_told_with_its_reason(monkeypatch):
 
     solve_once = single._solve_once
 
-    def breaking(problem, watch):
-        return solve_once(problem, watch) if problem.start.label == "default guess" else dying(watch)
+    def breaking(problem, watch, **more):
+        return solve_once(problem, watch, **more) if problem.start.label == "default guess" else dying(watch)
 
     monkeypatch.setattr(single, "_solve_once", breaking)
     found = solve(shape(endpoints=["y(0) = 0", "y(3) = 1"], solve={"starts": 2}), None, Beside(2))
@@ -94,6 +94,6 @@ def test_a_start_that_breaks_is_told_with_its_reason(monkeypatch):
 def test_where_every_start_breaks_the_reasons_are_raised(monkeypatch):
     from solvers import solve as single
 
-    monkeypatch.setattr(single, "_solve_once", lambda problem, watch: failing(watch))
+    monkeypatch.setattr(single, "_solve_once", lambda problem, watch, **more: failing(watch))
     with pytest.raises(RuntimeError, match="default guess: ValueError: of no use"):
         solve(shape(endpoints=["y(0) = 0", "y(3) = 1"], solve={"starts": 2}), None, Beside(2))
