@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
+from collections import Counter
 from typing import Any
 
 import numpy as np
 
 from solvers.deadline import Deadline
-from solvers.minimise.ipopt import Minimum, Start
+from solvers.minimise.ipopt import WARM, Minimum, Start
 from solvers.problem import Problem
 from solvers.search import refinement
 from solvers.search.attempt import SOLVED, end_of, make_program
@@ -29,6 +30,10 @@ GROWTH = 2.5
 """How much larger, in points, one mesh may be than the one before."""
 AIM = 0.1
 """The local error that a new mesh is made for, relative to the tolerance."""
+LEAST_BARRIER = 1e-11
+"""The least barrier with which a warm start begins."""
+NARROW = 0.1
+"""Width of an interval, relative to an even mesh, below which a smaller barrier may help."""
 
 
 def pursue(
@@ -76,6 +81,8 @@ def _go_on(pursuit: Pursuit, minimise_: Minimiser, meshes: int) -> None:
             return
         step = _next(path, _with_corners(mesh, path, options.points), minimise_)
         if step is None:
+            if pursuit.end is End.FAILED and pursuit.shown and pursuit.value_met_before:
+                pursuit.end = End.SETTLED  # what the meshes before have shown stays shown
             return
         _add(pursuit, minimise_, *step)
         end = settled(pursuit)
@@ -111,15 +118,35 @@ def _next(path: Trajectory, mesh: Mesh, minimise_: Minimiser) -> tuple[Program, 
     near = minimise_.nearby(program, warm)
     if near is not None:
         return program, near
-    for start, options in ((warm, {"ipopt.max_iter": FEW_ITERATIONS}), (Start(warm.z), {})):
+    pursuit, first = minimise_.pursuit, gentle_barrier(mesh)
+    usual: dict[str, Any] = {"ipopt.max_iter": FEW_ITERATIONS}
+    gentle = usual | {"ipopt.mu_init": first}
+    tries = [(warm, usual), (warm, gentle), (Start(warm.z), {})]
+    if first > NARROW * WARM["ipopt.mu_init"]:
+        del tries[1]
+    elif pursuit.gently:
+        del tries[0]
+    for start, options in tries:
         minimum = minimise_(program, start, options)
         if minimum.outcome in SOLVED:
+            pursuit.gently = options is gentle
             return program, minimum
         end = end_of(minimum)
         if end in (End.STOPPED, End.TIME):
             break
-    minimise_.pursuit.end = end
+    pursuit.end = end
     return None
+
+
+def gentle_barrier(mesh: Mesh) -> float:
+    """A barrier with which a warm start keeps the curve where it was also beside limits on narrow intervals.
+
+    At each point the barrier counts the same, but the functional counts by the point's measure: where curves come near
+    to limits that do not bind, as at singular ends, the usual barrier would drive them away.
+    """
+    each = Counter(i.stretch for i in mesh.intervals)
+    narrowest = min(i.width * each[i.stretch] for i in mesh.intervals)
+    return max(float(WARM["ipopt.mu_init"]) * min(narrowest, 1.0), LEAST_BARRIER)
 
 
 def _limited(mesh: Mesh, old: Mesh, found: refinement.Estimate, points: int) -> Mesh | None:

@@ -50,6 +50,7 @@ class Pursuit:
     curve_error: float = np.inf
     value_met_before: bool = False
     iterations: int = 0
+    gently: bool = False  # whether the last warm start had to begin with a small barrier
 
     @property
     def solved(self) -> bool:

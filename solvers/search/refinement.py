@@ -68,8 +68,7 @@ def estimate(path: Trajectory) -> Estimate:
     calm = {(c.stretch, lowered.controls.index((c.name, c.order))) for c in lowered.problem.calm}
     mesh = path.program.mesh
     weights = np.minimum(1.0, np.diff(path.breaks) / (path.breaks[-1] - path.breaks[0]))
-    scales = path.program.scales
-    state_sizes, control_sizes = sizes_of(path.states, scales.states), sizes_of(path.controls, scales.controls)
+    state_sizes, control_sizes = sizes_of(path)
     errors = np.zeros(len(mesh.intervals))
     shapes, bends = [], []
     states, controls = path.state_modes / state_sizes, path.control_modes / control_sizes
@@ -108,10 +107,7 @@ def _add_excess(path: Trajectory, errors: Array) -> None:
     if not bounded.any() and not unequal.any():
         return
     states = basis(BETWEEN, path.state_modes.shape[1] - 1) @ path.state_modes
-    excess = (
-        np.maximum(lower - states, states - upper)[:, :, bounded]
-        / sizes_of(path.states, path.program.scales.states)[bounded]
-    )
+    excess = np.maximum(lower - states, states - upper)[:, :, bounded] / sizes_of(path)[0][bounded]
     errors[:] = np.maximum(errors, excess.max(axis=(1, 2), initial=0.0))
     if unequal.any():
         bodies = _bodies_between(path, states)[:, :, unequal]

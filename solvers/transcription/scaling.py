@@ -49,6 +49,10 @@ SPIKE = 0.01
 SHRINKAGE = 1e-3
 """How much smaller a size may become from one mesh to the next: what tends to zero must not be blown up."""
 
+FAINT = 1e-3
+"""The least size of a derivative, relative to that of what it is the derivative of over the whole range: where a
+function hardly moves, its slope is the minimiser's noise, which no mesh resolves."""
+
 
 def find_scales(compiled: Compiled, where: Layout, z: Array, before: Scales | None = None) -> Scales:
     """Sizes from values (SI) on a mesh: the largest value of each quantity, else its bounds, else its neighbours.
@@ -81,6 +85,7 @@ def find_scales(compiled: Compiled, where: Layout, z: Array, before: Scales | No
         if quantity in unknown:
             states = np.array([sizes[q] for q in lowered.states])
             sizes[quantity] = _moving(compiled, where, z, index, states) or sizes[quantity]
+    not_faint(sizes, span)
     parameters = np.abs(z[where.parameters])
     integrals = _integral_sizes(compiled, where, z)
     for index, parameter in enumerate(lowered.problem.parameters):
@@ -96,6 +101,13 @@ def find_scales(compiled: Compiled, where: Layout, z: Array, before: Scales | No
     if before is None:
         return found
     return Scales(*(np.maximum(getattr(found, f.name), SHRINKAGE * getattr(before, f.name)) for f in fields(Scales)))
+
+
+def not_faint(sizes: dict[tuple[str, int], float], span: float) -> None:
+    """Raise the sizes of derivatives, in place, to what still moves the function below them noticeably."""
+    for name, order in sorted(sizes):
+        if (name, order - 1) in sizes:
+            sizes[name, order] = max(sizes[name, order], FAINT * sizes[name, order - 1] / span)
 
 
 def _moving(compiled: Compiled, where: Layout, z: Array, control: int, states: Array) -> float:

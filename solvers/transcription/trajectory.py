@@ -25,6 +25,7 @@ from solvers.transcription.limits import constants_of, number
 from solvers.transcription.lowering import primed
 from solvers.transcription.mesh import Mesh
 from solvers.transcription.program import Program
+from solvers.transcription.scaling import not_faint
 
 Array = NDArray[np.float64]
 
@@ -262,12 +263,21 @@ def distance(now: Trajectory, before: Trajectory) -> float:
     now_at, before_at = _fractions(now), _fractions(before)
     values = at_points(before_at[0], before.state_modes, now_at[1])
     differences = np.abs(values - now.states).max(axis=0)
-    return float((differences / sizes_of(now.states, now.program.scales.states)).max())
+    return float((differences / sizes_of(now)[0]).max())
 
 
-def sizes_of(values: Array, scales: Array) -> Array:
-    """What errors of quantities (columns) are relative to: the largest value, where it is more than noise."""
-    return np.asarray(np.maximum(np.abs(values).max(axis=0, initial=0.0), NOISE * scales))
+def sizes_of(path: Trajectory) -> tuple[Array, Array]:
+    """What errors of states and of controls are relative to: the largest value, where it is more than noise."""
+    lowered, scales = path.program.compiled.lowered, path.program.scales
+    sizes: dict[tuple[str, int], float] = {}
+    for quantities, values, own in (
+        (lowered.states, path.states, scales.states),
+        (lowered.controls, path.controls, scales.controls),
+    ):
+        largest = np.maximum(np.abs(values).max(axis=0, initial=0.0), NOISE * own)
+        sizes |= {quantity: float(size) for quantity, size in zip(quantities, largest, strict=True)}
+    not_faint(sizes, float(abs(path.breaks[-1] - path.breaks[0])))
+    return np.array([sizes[q] for q in lowered.states]), np.array([sizes[q] for q in lowered.controls])
 
 
 def _fractions(path: Trajectory) -> tuple[Array, Array]:

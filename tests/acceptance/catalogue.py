@@ -17,8 +17,6 @@ KNOWN_FAILURES: dict[tuple[str, str], str] = {
 """Promises that are not kept yet: (case, promise) -> reason.  A promise is "value", "error", "verdict" or "figures"."""
 
 HARD: dict[str, str] = {
-    "A20b": "every rotation of the starting place does as well: meshes come slowly to agree",
-    "A54": "the section vanishes at both ends, where the second derivative is singular: many narrow meshes",
     "A56b": "the tip of the fin is singular: the minimiser takes many steps on a narrow mesh",
     "B26": "singular arc in free time: whether the second variation is decided depends on the time left",
     "B34": "many switches around a singular arc",

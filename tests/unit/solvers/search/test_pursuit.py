@@ -7,11 +7,13 @@ import numpy as np
 import pytest
 
 from solvers.deadline import in_seconds
+from solvers.minimise.ipopt import WARM
 from solvers.search.attempt import FIRST_DEGREE, first_mesh
-from solvers.search.pursuit import go_on, pursue
+from solvers.search.pursuit import gentle_barrier, go_on, pursue
 from solvers.search.record import End
 from solvers.transcription.collocation import Family
 from solvers.transcription.lowering import lower
+from solvers.transcription.mesh import Mesh, interval
 from tests.unit.solvers.problems import compiled, regulator, shape, solved_on, stated
 
 CORNER = {
@@ -170,3 +172,44 @@ def test_a_problem_without_any_state_has_a_mesh_too():
     assert lower(pursuit.problem).states == ()
     assert pursuit.paths[-1].value == pytest.approx(0, abs=1e-8)
     assert compiled(pursuit.problem).point.controls == 1
+
+
+def test_a_slope_that_vanishes_needs_no_fine_mesh():
+    """Dido's problem in polar form: r is constant, and r' nothing but the minimiser's noise, which is no error."""
+    problem = shape(
+        independent={"name": "p", "from": 0, "to": 1},
+        unknowns={"r": {"within": [0.1, 10]}},
+        functional={"seek": "maximum", "integrand": "r^2/2"},
+        endpoints=["r(0) = r(1)"],
+        constraints=["integral(sqrt(r^2 + r'^2)) = 1"],
+    )
+    pursuit = pursue(problem, None, far(), meshes=4)
+    assert pursuit.end is End.CONVERGED
+    assert len(pursuit.steps) == 2
+    assert pursuit.paths[-1].value == pytest.approx(1 / 2, rel=1e-9)
+
+
+def test_the_barrier_of_a_warm_start_is_smaller_where_intervals_are_narrow():
+    wide = first_mesh(1)
+    assert gentle_barrier(wide) == WARM["ipopt.mu_init"]
+    first, *rest = wide.intervals
+    cut = [
+        interval(0, start, end, Family.RADAU, 4)
+        for start, end in ((0.0, first.width / 1e4), (first.width / 1e4, first.width))
+    ]
+    assert gentle_barrier(Mesh((*cut, *rest))) == pytest.approx(WARM["ipopt.mu_init"] * 9 / 8e4)
+
+
+def test_a_mesh_that_cannot_be_solved_takes_nothing_back(monkeypatch):
+    """What two meshes have shown stays shown, but what only one has found does not become a result by that."""
+
+    def fails(path, mesh, minimise_):
+        minimise_.pursuit.end = End.FAILED
+
+    corner = CORNER | {"functional": {"integrand": "1 + (u - abs(t - 1/3))^2"}}
+    for meshes, end in ((1, End.FAILED), (5, End.SETTLED)):
+        pursuit = pursue(stated(**corner), None, far(), meshes=meshes)
+        pursuit.value_met_before = pursuit.shown
+        with monkeypatch.context() as patched:
+            patched.setattr("solvers.search.pursuit._next", fails)
+            assert go_on(pursuit, None, far()).end is end

@@ -6,7 +6,7 @@ import pytest
 from solvers.solve import solve
 from solvers.transcription.layout import layout
 from solvers.transcription.mesh import uniform
-from solvers.transcription.scaling import find_row_sizes, find_scales
+from solvers.transcription.scaling import FAINT, find_row_sizes, find_scales
 from tests.unit.solvers.problems import compiled, solved_on, start_of, stated
 
 MESH = uniform(1, 6, 6)
@@ -128,6 +128,18 @@ def test_sizes_are_the_largest_values():
     _, _, _, scales = scales_of(problem)
     assert scales.states == pytest.approx([7])
     assert scales.places == pytest.approx([1, 1])
+
+
+def test_a_slope_that_vanishes_does_not_get_the_size_of_its_noise():
+    problem = stated(unknowns={"x": {}, "u": {}}, dynamics=["x'' = u"], endpoints=["x(0) = 2"])
+
+    def still(where, z):
+        z[where.nodes], z[where.inner], z[where.controls] = [2.0, 1e-12], [2.0, 1e-12], 1e-12
+        return z
+
+    functions, _, _, scales = scales_of(problem, still)
+    assert functions.lowered.states == (("x", 0), ("x", 1))
+    assert scales.states == pytest.approx([2, FAINT * 2])
 
 
 def test_what_is_zero_takes_its_size_from_bounds_else_from_its_neighbours():
