@@ -4,10 +4,13 @@ from __future__ import annotations
 
 from solvers.checks.convexity import convex_curves
 from solvers.search.record import End, Pursuit
-from solvers.solution import Diagnosis
+from solvers.solution import Diagnosis, Finding
 
 KEPT = "The best curve so far is kept"
 NOTHING_KEPT = "No curve had been found by then"
+
+NAMED = 6
+"""Most conditions of a conflict that the sentence names; the findings have all."""
 
 _SENTENCES = {
     End.TIME: f"The time limit was reached before the tolerance. {KEPT}; raise "
@@ -31,7 +34,9 @@ def diagnose(pursuit: Pursuit) -> Diagnosis | None:
     if pursuit.end in (End.CONVERGED, End.SETTLED):
         return None
     findings = pursuit.findings
-    if pursuit.end is End.INFEASIBLE:
+    if pursuit.end is End.INFEASIBLE and pursuit.conflicts:
+        sentence = _of_conflicts(pursuit)
+    elif pursuit.end is End.INFEASIBLE:
         named = "; ".join(f"'{finding.label}'" for finding in findings[:3])
         if convex_curves(pursuit.problem):
             sentence = f"No curve satisfies all conditions together. The least that has to give: {named}."
@@ -51,3 +56,26 @@ def diagnose(pursuit: Pursuit) -> Diagnosis | None:
         if not pursuit.solved:
             sentence = sentence.replace(KEPT, NOTHING_KEPT)
     return Diagnosis(pursuit.end.value, sentence, findings)
+
+
+def _of_conflicts(pursuit: Pursuit) -> str:
+    """Which conditions cannot hold together, and what is known of that."""
+    sets = [_listed(conflict) for conflict in pursuit.conflicts]
+    if convex_curves(pursuit.problem):
+        begin, proviso = "No curve satisfies", ""
+    else:
+        begin = "No curve was found, from several starts, that satisfies"
+        proviso = " The conditions are not convex, so that one elsewhere is not excluded."
+    sentence = f"{begin} {sets[0]}." + "".join(f" Nor {other}." for other in sets[1:])
+    if any(len(conflict) > 1 for conflict in pursuit.conflicts):
+        sentence += " Without any one of them the others can be met; it says how far each would have to give alone."
+    return sentence + proviso
+
+
+def _listed(conflict: tuple[Finding, ...]) -> str:
+    """The conditions of one conflict, in words."""
+    labels = list(dict.fromkeys(f"'{finding.label}'" for finding in conflict))
+    if len(labels) > NAMED:
+        labels[NAMED - 1 :] = [f"{len(labels) - NAMED + 1} more conditions"]
+    together = "both" if len(labels) == 2 else "all of"
+    return labels[0] if len(labels) == 1 else f"{together} {', '.join(labels[:-1])} and {labels[-1]}"

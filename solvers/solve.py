@@ -37,6 +37,7 @@ from solvers.problem import Continuation, Problem, Seek
 from solvers.search.attempt import first_mesh
 from solvers.search.chatter import chatter
 from solvers.search.escape import escapes
+from solvers.search.irreducible import name_conflicts
 from solvers.search.pursuit import go_on, pursue
 from solvers.search.record import End, Pursuit
 from solvers.search.sharpen import sharpen
@@ -147,6 +148,7 @@ def _from_starts(
     else:
         found = _found(problem, watch, deadline, form)
         found = replace(found, work=time.process_time() - idle)
+        name_conflicts(found.pursuit, watch, deadline)
         solution = _solution(problem, found, began)
     if problem.sweeps and found is not None:
         solution = _with_sweep(solution, problem, found, watch, deadline, form)
@@ -157,8 +159,10 @@ def _from_starts(
 
 def _solve_once(problem: Problem, watch: Watch | None, form: Form) -> Solution:
     """Solve a problem from its one start, for its constants as they stand."""
-    began = time.perf_counter()
-    return _solution(problem, _found(problem, watch, in_seconds(problem.options.time_limit), form), began)
+    began, deadline = time.perf_counter(), in_seconds(problem.options.time_limit)
+    found = _found(problem, watch, deadline, form)
+    name_conflicts(found.pursuit, watch, deadline)
+    return _solution(problem, found, began)
 
 
 def _with_branch(

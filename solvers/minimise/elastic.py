@@ -8,18 +8,20 @@ Reference: Nocedal, Wright (2006), Numerical Optimization, section 17.2 (l1 pena
 
 from __future__ import annotations
 
-from collections.abc import Callable
-from dataclasses import dataclass
+from collections.abc import Callable, Collection, Mapping
+from dataclasses import dataclass, replace
+from types import MappingProxyType
 
 import numpy as np
 from numpy.typing import NDArray
 
 from solvers.deadline import Deadline
 from solvers.minimise.ipopt import LEAST_SQUARES_MULTIPLIERS, Iterate, Minimum, Start, minimise
+from solvers.problem import Condition
 from solvers.solution import Finding
 from solvers.transcription.entries import Entries
 from solvers.transcription.lowering import Quantity, primed
-from solvers.transcription.program import Program
+from solvers.transcription.program import Program, restated
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]
@@ -28,6 +30,11 @@ Indices = NDArray[np.int64]
 SETTINGS = LEAST_SQUARES_MULTIPLIERS | {"ipopt.tol": 1e-8, "ipopt.acceptable_tol": 1e-5, "ipopt.max_iter": 300}
 """What conflicts is named to some digits."""
 
+
+LEAST_SLACK = 0.01
+"""With what a slack begins where nothing is broken yet."""
+
+STEADY = {"ipopt.mu_strategy": "monotone"}
 
 PULL = 1e-4
 """Weight of the distance from the start: small enough that what can be met is met, it makes the curve the only one."""
@@ -45,11 +52,16 @@ class Group:
 
 @dataclass(frozen=True, slots=True)
 class LeastViolation:
-    """The curve that violates least (scaled z) and, worst first, what it violates; `total` is relative."""
+    """The curve that violates least (scaled z) and, worst first, what it violates; `total` is relative.
+
+    `forces` says by pointer how hard each condition presses against the others: what has no part in a conflict does
+    not.
+    """
 
     z: Array
     total: float
     findings: tuple[Finding, ...]
+    forces: Mapping[str, float]
     minimum: Minimum
 
 
@@ -65,15 +77,16 @@ class _Elastic:
 
 
 class _Numbers:
-    """Its numbers: f is the sum of the slacks and the pull to the start.
+    """Its numbers: f is the sum of the weighed slacks and the pull to the start.
 
     Its variables are z and the slacks; its rows the hard ones of g, the relaxed ones plus and minus their slack, and
     held z the same.
     """
 
     def __init__(self, program: Program, hard: Indices, relaxed: Indices, held: Indices, owners: Indices,
-                 signs: Array, slacks: int, start: Array) -> None:  # fmt: skip
-        self._inner, self._size, self._slacks, self._start = program.numbers, program.layout.size, slacks, start
+                 signs: Array, prices: Array, start: Array, pull: float) -> None:  # fmt: skip
+        self._inner, self._size, self._prices = program.numbers, program.layout.size, prices
+        self._start, self._pull = start, pull
         self._hard, self._relaxed, self._held, self._owners, self._signs = hard, relaxed, held, owners, signs
         h, m, k = len(hard), len(relaxed), len(held)
         inner, entries = self._inner.jacobian_pattern, Entries()
@@ -84,20 +97,20 @@ class _Numbers:
             entries.add(row[inner.rows[kept]], inner.columns()[kept], 1.0, kept)
         entries.add(h + 2 * m + np.arange(2 * k), np.tile(held, 2), 1.0)
         entries.add(h + np.arange(len(owners)), self._size + owners, signs)
-        size = self._size + slacks
+        size = self._size + len(prices)
         self._jacobian = entries.recipe((h + 2 * (m + k), size))
         curved, entries, diagonal = self._inner.hessian_pattern, Entries(), np.arange(self._size)
         entries.add(curved.rows, curved.columns(), 1.0, np.arange(len(curved.rows)))
-        entries.add(diagonal, diagonal, PULL, len(curved.rows))
+        entries.add(diagonal, diagonal, pull, len(curved.rows))
         self._hessian = entries.recipe((size, size))
         self.jacobian_pattern = self._jacobian.pattern
         self.hessian_pattern = self._hessian.pattern
 
     def value(self, w: Array) -> float:
-        return float(w[self._size :].sum() + PULL / 2 * np.sum((w[: self._size] - self._start) ** 2))
+        return float(self._prices @ w[self._size :] + self._pull / 2 * np.sum((w[: self._size] - self._start) ** 2))
 
     def gradient(self, w: Array) -> Array:
-        return np.concatenate([PULL * (w[: self._size] - self._start), np.ones(self._slacks)])
+        return np.concatenate([self._pull * (w[: self._size] - self._start), self._prices])
 
     def constraints(self, w: Array) -> Array:
         z, slack = w[: self._size], w[self._size :]
@@ -117,7 +130,7 @@ class _Numbers:
 
 
 def groups(program: Program) -> list[Group]:
-    """What may give: conditions, constraints and bounds, but neither dynamics nor fixed places."""
+    """What may give: conditions, constraints and bounds of the user, but neither dynamics nor fixed places."""
     compiled, where, rows = program.compiled, program.layout, program.rows
     lowered = compiled.lowered
     none = np.empty(0, np.int64)
@@ -127,6 +140,8 @@ def groups(program: Program) -> list[Group]:
         if index >= len(lowered.equalities):
             here = rows.pointwise + np.arange(count) * constraints + index
             found.append(Group(condition.label, condition.pointer, here, none))
+    for index, (_, _, condition) in enumerate(compiled.rims):
+        found.append(Group(condition.label, condition.pointer, np.array([rows.rims + index]), none))
     for index, condition in enumerate(compiled.conditions):
         found.append(Group(condition.label, condition.pointer, np.array([rows.conditions + index]), none))
     for state, place, condition in compiled.fixed:
@@ -147,16 +162,53 @@ def groups(program: Program) -> list[Group]:
             found.append(Group(f"{primed((unknown.name, 0))} within its bounds", pointer, none,
                                everywhere((unknown.name, 0))))  # fmt: skip
     for parameter, index in zip(lowered.problem.parameters, where.parameters, strict=True):
+        if " " in parameter.name:  # no user can write that: what the solver has added for its own use holds
+            continue
         if np.isfinite(parameter.lower) or np.isfinite(parameter.upper):
             pointer = f"/parameters/{parameter.name}/within"
             found.append(Group(f"{parameter.name} within its bounds", pointer, none, np.array([index])))
-    return found
+    return [group for group in found if group.pointer]  # so does what has no place in the document
+
+
+def without(program: Program, pointers: Collection[str]) -> Program:
+    """The same program with some conditions of the user dropped, by their pointers."""
+    compiled, problem = program.compiled, program.compiled.lowered.problem
+
+    def loose(condition: Condition) -> Condition:
+        return replace(condition, lower=None, upper=None) if condition.pointer in pointers else condition
+
+    unknowns = tuple(replace(u, lower=-np.inf, upper=np.inf) if f"/unknowns/{u.name}/within" in pointers else u
+                     for u in problem.unknowns)  # fmt: skip
+    parameters = tuple(replace(p, lower=-np.inf, upper=np.inf) if f"/parameters/{p.name}/within" in pointers else p
+                       for p in problem.parameters)  # fmt: skip
+    free = replace(problem, unknowns=unknowns, parameters=parameters)
+    return restated(program, replace(
+        compiled,
+        lowered=replace(compiled.lowered, problem=free),
+        pointwise=tuple(map(loose, compiled.pointwise)),
+        bounds=tuple((quantity, condition) for quantity, condition in compiled.bounds
+                     if condition.pointer not in pointers),
+        conditions=tuple(map(loose, compiled.conditions)),
+        fixed=tuple((state, place, condition) for state, place, condition in compiled.fixed
+                    if condition.pointer not in pointers),
+        rims=tuple((control, place, loose(condition)) for control, place, condition in compiled.rims),
+    ))  # fmt: skip
 
 
 def least_violation(
-    program: Program, z: Array, *, deadline: Deadline, watch: Callable[[Iterate], bool] | None = None
+    program: Program,
+    z: Array,
+    *,
+    deadline: Deadline,
+    watch: Callable[[Iterate], bool] | None = None,
+    prices: Mapping[str, float] = MappingProxyType({}),
+    pull: float = PULL,
+    steadily: bool = False,
 ) -> LeastViolation:
-    """Minimise the sum of the slacks from a start (scaled)."""
+    """Minimise the sum of the slacks from a start (scaled), each times the price of its pointer, or once.
+
+    `steadily` lowers the barrier step by step: slower where all goes well, but from a start that is no good it arrives.
+    """
     parts = groups(program)
     size, count = program.layout.size, program.rows.count
     owner_of_row, owner_of_variable = np.full(count, -1), np.full(size, -1)
@@ -182,13 +234,41 @@ def least_violation(
         upper=np.concatenate([upper, np.full(len(parts), infinite)]),
         row_lower=row_lower,
         row_upper=row_upper,
-        numbers=_Numbers(program, hard, relaxed, held, owners, signs, len(parts), z),
+        numbers=_Numbers(
+            program,
+            hard,
+            relaxed,
+            held,
+            owners,
+            signs,
+            np.array([prices.get(group.pointer, 1.0) for group in parts]),
+            z,
+            pull,
+        ),
     )
-    start = np.concatenate([z, np.ones(len(parts))])
-    minimum = minimise(elastic, Start(start), deadline=deadline, watch=watch, options=SETTINGS)
+    start = np.concatenate([z, _first_slacks(program, z, owner_of_row, owner_of_variable, len(parts))])
+    minimum = minimise(elastic, Start(start), deadline=deadline, watch=watch,
+                       options=SETTINGS | (STEADY if steadily else {}))  # fmt: skip
     answer, amounts = minimum.z[:size], minimum.z[size:]
     findings = _findings(program, parts, owner_of_variable, answer, amounts)
-    return LeastViolation(answer, float(np.sum(amounts[amounts > 1e-7])), findings, minimum)
+    forces: dict[str, float] = {}
+    above_rows, below_rows, above, below = np.split(minimum.multipliers[len(hard) :], np.cumsum([m, m, k]))
+    net = np.concatenate([above_rows + below_rows, above + below])  # what both sides of an equality say cancels
+    pushes = np.bincount(np.concatenate([owner_of_row[relaxed], owner_of_variable[held]]), np.abs(net), len(parts))
+    for group, push in zip(parts, pushes, strict=True):
+        forces[group.pointer] = forces.get(group.pointer, 0.0) + float(push)
+    return LeastViolation(answer, float(np.sum(amounts[amounts > 1e-7])), findings, forces, minimum)
+
+
+def _first_slacks(program: Program, z: Array, of_rows: Indices, of_variables: Indices, count: int) -> Array:
+    """Somewhat more than what each condition is broken by at the start: at least a little, at most one."""
+    values = program.numbers.constraints(z)
+    excess = np.concatenate([np.maximum(program.row_lower - values, values - program.row_upper),
+                             np.maximum(program.lower - z, z - program.upper)])  # fmt: skip
+    owners = np.concatenate([of_rows, of_variables])
+    slacks: Array = np.full(count, LEAST_SLACK)
+    np.maximum.at(slacks, owners[owners >= 0], 1.1 * np.clip(np.nan_to_num(excess[owners >= 0], nan=1.0), 0.0, 1.0))
+    return np.asarray(np.minimum(slacks, 1.0))
 
 
 def _findings(program: Program, parts: list[Group], owners: Array, z: Array, amounts: Array) -> tuple[Finding, ...]:

@@ -49,9 +49,9 @@ class Minimiser:
             self.pursuit.last = (program, minimum)
         return minimum
 
-    def relax(self, program: Program, z: Array) -> LeastViolation:
+    def relax(self, program: Program, z: Array, **settings: Any) -> LeastViolation:
         """The curve that violates the conditions least."""
-        return least_violation(program, z, deadline=self.deadline, watch=self._hear(program))
+        return least_violation(program, z, deadline=self.deadline, watch=self._hear(program), **settings)
 
     def _hear(self, program: Program) -> Callable[[Iterate], bool]:
         mesh = program.mesh

@@ -46,6 +46,7 @@ class Pursuit:
     last: tuple[Program, Minimum] | None = None
     first: Program | None = None  # the one whose sizes are those of the first guess
     findings: tuple[Finding, ...] = ()
+    conflicts: tuple[tuple[Finding, ...], ...] = ()  # the smallest sets of conditions that no curve satisfies
     value_error: float = np.inf
     curve_error: float = np.inf
     value_met_before: bool = False

@@ -210,7 +210,10 @@ def test_an_infeasible_problem_is_a_finished_run(client, post):
     assert answer.json()["state"] == "finished"
     assert answer.json()["verdict"] == "infeasible"
     result = client.get(answer.json()["links"]["result"]).json()
-    assert result["diagnosis"]["findings"][0]["pointer"] == "/constraints/0"
+    found = {finding["pointer"]: finding for finding in result["diagnosis"]["findings"]}
+    assert found.keys() == {"/constraints/0", "/endpoints/0", "/endpoints/1"}  # without any one of them it would do
+    assert found["/constraints/0"]["amount"] == pytest.approx(13**0.5 - 3.2, rel=1e-4)
+    assert found["/constraints/0"]["unit"] == "m"
 
 
 def test_check_reads_back_and_keeps_nothing(client, post):

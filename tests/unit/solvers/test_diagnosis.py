@@ -31,6 +31,18 @@ def test_conflicts_are_named():
     assert found.findings == findings
 
 
+def test_the_smallest_conflicts_are_said_set_by_set():
+    sets = (tuple(Finding(name, f"/constraints/{name}", 1.0) for name in "abc"), (Finding("d", "/constraints/d", 1.0),))
+    found = pursuit(End.INFEASIBLE, *sets[0], *sets[1])
+    found.conflicts = sets
+    told = diagnose(found)
+    assert told.sentence.startswith("No curve satisfies all of 'a', 'b' and 'c'. Nor 'd'. Without any one of them")
+    found.conflicts = sets[1:]
+    assert diagnose(found).sentence == "No curve satisfies 'd'."
+    found.conflicts = (tuple(Finding(str(k), f"/constraints/{k}", 1.0) for k in range(9)),)
+    assert "'4' and 4 more conditions" in diagnose(found).sentence
+
+
 def test_what_is_undefined_is_shown_with_its_place():
     found = diagnose(pursuit(End.UNDEFINED, Finding("log(y)", "/where/w", None, 0.25, "with y = -2")))
     assert "'log(y)' at 0.25 (with y = -2)" in found.sentence
