@@ -90,7 +90,7 @@ def test_a_weaker_verdict_is_told_by_the_exit_code():
     done = _run("solve", "-", stdin=json.dumps(document))
     assert done.returncode == 1
     assert re.search(r"verdict\s+infeasible", done.stdout)
-    assert re.search(r"integral\(sqrt\(1 \+ y'\^2\)\) <= 3\.2, by 0\.405\d m", done.stdout)
+    assert re.search(r"integral\(sqrt\(1 \+ y'\^2\)\) <= 3\.2, by 0\.405\d\sm", done.stdout)
     assert "Without any one of them the others can be met" in done.stdout
 
 
