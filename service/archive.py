@@ -33,6 +33,7 @@ from solvers.solution import (
     Solution,
     SweepPoint,
 )
+from solvers.undetermined import Undetermined
 from solvers.units import PLAIN, Unit
 from web.unit_text import per
 
@@ -81,6 +82,7 @@ def result_document(
         "sweep": _sweep(solution, problem, units),
         "continuation": _branch(solution, problem),
         "diagnosis": _diagnosis(solution.diagnosis, problem, units),
+        "undetermined": [_undetermined(one, problem) for one in solution.undetermined],
         "notes": list(solution.notes),
         "reading": dict(reading),
         "provenance": {
@@ -400,6 +402,15 @@ def _diagnosis(diagnosis: Diagnosis | None, problem: Problem, units: _Units) -> 
         return None
     findings = [_finding(finding, problem, units) for finding in diagnosis.findings]
     return {"reason": diagnosis.reason, "sentence": diagnosis.sentence, "findings": findings}
+
+
+def _undetermined(found: Undetermined, problem: Problem) -> dict[str, Any]:
+    return {
+        "name": found.name,
+        "pointer": found.pointer,
+        "where": _where(found.place, "", problem.independent_unit),
+        "sentence": found.sentence,
+    }
 
 
 def _finding(finding: Finding, problem: Problem, units: _Units) -> dict[str, Any]:

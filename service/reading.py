@@ -22,6 +22,7 @@ from solvers.necessary.on_arcs import necessary_on_arcs
 from solvers.problem import Place, Problem, Unknown
 from solvers.tables.table import Between, Outside, Table
 from solvers.transcription.lowering import Quantity, lower, primed
+from solvers.undetermined import undetermined
 from solvers.units import Unit
 from web.unit_text import per
 
@@ -312,6 +313,7 @@ def _notes(problem: Problem, document: Document) -> Iterator[str]:
     used = {node.function for tree in trees for node in walk(tree) if isinstance(node, Call)}
     if "log" in used:
         yield "log is the natural logarithm."
+    yield from (found.sentence for found in undetermined(problem))
 
 
 def _tables(problem: Problem) -> Tables:

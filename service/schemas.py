@@ -209,6 +209,15 @@ class DiagnosisDocument(Part):
     findings: list[FindingOfDiagnosis]
 
 
+class UndeterminedFound(Part):
+    """Something that is free and that nothing determines: one choice of many is shown."""
+
+    name: str = Field(description="an unknown or a parameter")
+    pointer: str = Field(description="its place in the document")
+    where: Where | None = Field(description="where it is freest; null where that is all along")
+    sentence: str
+
+
 class MeshOfHistory(Part):
     """One mesh of the refinement."""
 
@@ -420,6 +429,7 @@ class ResultDocument(Part):
     continuation: ContinuationDocument | None = Field(description="null where none was asked for")
     sweep: SweepDocument | None = Field(description="null where no constant is swept")
     diagnosis: DiagnosisDocument | None
+    undetermined: list[UndeterminedFound] = Field(default=[], description="what is free that nothing determines")
     notes: list[str]
     reading: ReadingDocument
     provenance: Provenance

@@ -123,6 +123,17 @@ def _lines(result: Mapping[str, Any]) -> Iterator[str]:
         for fold in branch["folds"]:
             at, value = display.quantity(fold["at"], branch["unit"], 9), result["value_unit"]
             yield f"  fold at {branch['constant']} = {at}, value {display.quantity(fold['value'], value, 9)}"
+    if loose := result["undetermined"]:
+        yield ""
+        yield "Undetermined (one choice of many is shown)"
+        for one in loose:
+            place = one["where"] and one["where"]["place"]
+            at = (
+                ""
+                if place is None
+                else f" Most at {result['reading']['independent']['name']} = {display.number(place, 4)}."
+            )
+            yield f"  {one['sentence']}{at}"
     if result["notes"]:
         yield ""
         yield "Notes"

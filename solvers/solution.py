@@ -9,6 +9,7 @@ from enum import Enum
 import numpy as np
 
 from solvers.curve import Array, Curve
+from solvers.undetermined import Undetermined
 from solvers.units import PLAIN, Unit
 
 
@@ -266,6 +267,7 @@ class Solution:
     sweep: tuple[SweepPoint, ...] = ()  # row by row: the values of the last constant run fastest
     checks: tuple[Check, ...] = ()
     diagnosis: Diagnosis | None = None
+    undetermined: tuple[Undetermined, ...] = ()  # one choice of many is shown
     meshes: tuple[MeshStep, ...] = ()
     iterations: int = 0
     times: Mapping[str, float] = field(default_factory=dict)  # seconds per stage

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import time
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import replace
 from functools import cache, partial
 from itertools import count
@@ -16,7 +16,7 @@ from solvers import checks
 from solvers.answers.fit import fit
 from solvers.answers.prices import prices
 from solvers.answers.sensitivity import slopes
-from solvers.checks import lower_bound
+from solvers.checks import curvature, lower_bound, refinement
 from solvers.checks.redundancy import unambiguous
 from solvers.curve import Curve
 from solvers.deadline import Deadline, in_seconds
@@ -42,7 +42,19 @@ from solvers.search.pursuit import go_on, pursue
 from solvers.search.record import End, Pursuit
 from solvers.search.sharpen import sharpen
 from solvers.search.structure import at_the_edge, held_rightly, jumps_at_breaks, present_switches
-from solvers.solution import BranchPoint, Change, Check, Price, Progress, Slope, Solution, SwitchPlace, Verdict, Watch
+from solvers.solution import (
+    BranchPoint,
+    Change,
+    Check,
+    Price,
+    Progress,
+    Slope,
+    Solution,
+    Status,
+    SwitchPlace,
+    Verdict,
+    Watch,
+)
 from solvers.starts.extremals import solve_from_starts
 from solvers.starts.guess import guesses
 from solvers.starts.together import IN_TURN, Together
@@ -56,6 +68,7 @@ from solvers.transcription.lowering import lower, primed
 from solvers.transcription.natural import at_natural_sizes
 from solvers.transcription.scaling import find_scales
 from solvers.transcription.trajectory import Trajectory, costate_curve, curve
+from solvers.undetermined import Undetermined, undetermined
 from solvers.verdict import judge
 
 Array = NDArray[np.float64]
@@ -361,6 +374,7 @@ def _solution(
             gauged.value(value),
             None if value_error_or_none is None else abs(factor) * value_error,
         )
+    loose = () if brief else _undetermined(problem, path, gauged, made, value_error)
     kept = {name: functions for name, functions in shape.functions.items() if not name.startswith(SLACK + " ")}
     fitted = None if brief else fit(path)
     notes = () if brief else (*_notes(problem, pursuit, gauged), *([left_out] if left_out else []))
@@ -378,6 +392,7 @@ def _solution(
         changes=altered,
         checks=made,
         diagnosis=diagnosis,
+        undetermined=loose,
         meshes=tuple(pursuit.steps),
         iterations=pursuit.iterations,
         times=times | {"checks": time.perf_counter() - solved_at},
@@ -385,6 +400,28 @@ def _solution(
         notes=notes,
         switches=switches,
     )
+
+
+def _undetermined(
+    problem: Problem, path: Trajectory, gauged: Gauged | None, made: Sequence[Check], value_error: float
+) -> tuple[Undetermined, ...]:
+    """What nothing determines: by the formulas, or where the second variation leaves it open by moving the curve."""
+    found = undetermined(problem)
+    status = {check.name: check.status for check in made}
+    if found or status.get(curvature.NAME) is not Status.NOT_APPLICABLE or not np.isfinite(value_error):
+        return found
+    solid = {*checks.FEASIBLE, *checks.FIRST_ORDER} - {refinement.NAME}  # from mesh to mesh such curves may wander
+    if any(status.get(name) is Status.FAILED for name in solid):
+        return ()
+    from solvers.answers.flat import flat_directions  # here, so that SciPy is loaded only where it is needed
+
+    def on_graph(place: float) -> float:
+        if gauged is None or not gauged.graph:
+            return place
+        return float(curve(path).evaluate(problem.independent, np.array([place]))[0])
+
+    names = {unknown.name for unknown in problem.unknowns} | {parameter.name for parameter in problem.parameters}
+    return flat_directions(path, names, value_error, on_graph)
 
 
 def _switches(pursuit: Pursuit, gauged: Gauged | None) -> tuple[SwitchPlace, ...]:

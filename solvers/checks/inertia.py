@@ -165,7 +165,7 @@ def count_negative(
         raise TimeoutError
     if len(columns) <= FEW and _positive(second, columns, np.flatnonzero(rows), shift):
         return Count(0, None)
-    local, coupling = _normal(second.jacobian[near][:, columns]), _normal(second.jacobian[far][:, columns])
+    local, coupling = normal(second.jacobian[near][:, columns]), normal(second.jacobian[far][:, columns])
     hessian = second.hessian[columns][:, columns] + shift * second.metric[columns][:, columns]
     penalized = (hessian + local.T @ local / PENALTY).tocsc()
     whole = sp.bmat([[penalized, coupling.T], [coupling, -PENALTY * sp.eye(coupling.shape[0])]], format="csc")
@@ -237,7 +237,7 @@ def _factorized(band: sp.csc_matrix) -> tuple[Callable[[Array], Array] | None, i
     return factors.solve, int((factors.U.diagonal() < 0).sum())
 
 
-def _normal(jacobian: sp.csr_matrix) -> sp.csr_matrix:
+def normal(jacobian: sp.csr_matrix) -> sp.csr_matrix:
     """Rows of length one; rows of zeros vanish."""
     length = np.sqrt(np.asarray(jacobian.multiply(jacobian).sum(axis=1)).ravel())
     kept = length > 1e-14
@@ -247,7 +247,7 @@ def _normal(jacobian: sp.csr_matrix) -> sp.csr_matrix:
 def least_quotient(second: Second, free: Flags, rows: Flags) -> float:
     """The least second variation relative to the mean square of a variation, on the exact kernel of the rows."""
     columns = np.flatnonzero(free)
-    jacobian = _normal(second.jacobian[np.flatnonzero(rows)][:, columns]).toarray()
+    jacobian = normal(second.jacobian[np.flatnonzero(rows)][:, columns]).toarray()
     basis, triangle, _ = qr(jacobian.T, pivoting=True)
     kernel = basis[:, np.count_nonzero(np.abs(np.diag(triangle)) > 1e-11) :]
     if not kernel.shape[1]:
@@ -261,7 +261,7 @@ def least_quotient(second: Second, free: Flags, rows: Flags) -> float:
 def proved(second: Second, free: Flags, rows: Flags, direction: Array) -> float:
     """The second variation of a direction put onto the constraints, relative to its mean square."""
     columns = np.concatenate([np.flatnonzero(free & ~second.border), np.flatnonzero(free & second.border)])
-    jacobian = _normal(second.jacobian[np.flatnonzero(rows)][:, columns])
+    jacobian = normal(second.jacobian[np.flatnonzero(rows)][:, columns])
     for _ in range(2):
         direction = direction - lsqr(jacobian, jacobian @ direction, atol=1e-14, btol=1e-14, iter_lim=SWEEPS)[0]
     bend = float(direction @ (second.hessian[columns][:, columns] @ direction))

@@ -27,6 +27,7 @@ from solvers.solution import (
     SwitchPlace,
 )
 from solvers.transcription.limits import number
+from solvers.undetermined import Undetermined
 
 Array = NDArray[np.float64]
 
@@ -44,6 +45,7 @@ def rejoin(beside: Beside, found: Solution) -> Solution:
         prices=tuple(_prices(beside, found.prices)),
         checks=tuple(_check(beside, check, where) for check in found.checks),
         diagnosis=None if found.diagnosis is None else _diagnosis(beside, found.diagnosis, where),
+        undetermined=tuple(_undetermined(beside, one, where) for one in found.undetermined),
         notes=tuple(notes),
         sweep=tuple(_point(beside, point) for point in found.sweep),
         extremals=tuple(replace(one, solution=rejoin(beside, one.solution)) for one in found.extremals),
@@ -160,6 +162,12 @@ def _switches(beside: Beside, found: Solution, where: Where) -> Iterator[SwitchP
 
 def _diagnosis(beside: Beside, diagnosis: Diagnosis, where: Where) -> Diagnosis:
     return replace(diagnosis, findings=tuple(_finding(beside, finding, where) for finding in diagnosis.findings))
+
+
+def _undetermined(beside: Beside, found: Undetermined, where: Where) -> Undetermined:
+    name, piece = beside.parted(found.name)
+    pointer = beside.parted(found.pointer)[0]
+    return replace(found, name=name, pointer=pointer, place=where.at(piece, found.place))
 
 
 def _finding(beside: Beside, finding: Finding, where: Where) -> Finding:

@@ -66,6 +66,14 @@ def diagnosis_of(result: Mapping[str, Any]) -> Diagnosis | None:
     return Diagnosis(heading, str(given.get("sentence") or ""), advice, tuple(findings))
 
 
+def undetermined_of(result: Mapping[str, Any]) -> Rows:
+    """Name, sentence and place (a dash where it is all along) of what nothing determines."""
+    return tuple(
+        (str(one["name"]), str(one["sentence"]), _where(one.get("where"), result))
+        for one in result.get("undetermined") or ()
+    )
+
+
 def _independent(result: Mapping[str, Any]) -> tuple[str, str]:
     """Name and unit of the independent variable, from the curve or else from the problem."""
     found = (result.get("curve") or {}).get("independent") or (result.get("problem") or {}).get("independent") or {}

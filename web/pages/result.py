@@ -24,6 +24,7 @@ from web.pages.evidence import (
     prices_of,
     reach_of,
     slopes_of,
+    undetermined_of,
 )
 from web.pages.extremals import Found, found_by_starts
 from web.pages.fit import FitView, fit_view
@@ -63,6 +64,7 @@ class ResultPage(Page):
     value_about: str = told("What the value is, in a few words.")
     parameters: Rows = told("Name, value with unit, meaning of each parameter found.")
     diagnosis: Diagnosis | None = told("Why there is no full result; None where there is one.")
+    undetermined: Rows = told("Name, sentence and place of what is free that nothing determines.")
     main_figures: tuple[Figure, ...] = told("The curve itself.")
     fitted: FitView | None = told("The fit to observations; None where nothing was observed.")
     fitted_figures: tuple[Figure, ...] = told("The observations over the curve, and their residuals.")
@@ -125,6 +127,7 @@ def result_page(
         value_about=_value_about(result, seek),
         parameters=parameters_of(result),
         diagnosis=diagnosis_of(result),
+        undetermined=undetermined_of(result),
         main_figures=tuple(figure for figure in drawn if figure.key.startswith(MAIN_FIGURES)),
         fitted=fit_view(result, run_id),
         fitted_figures=tuple(figure for figure in drawn if figure.key.startswith(FITTED_FIGURES)),
