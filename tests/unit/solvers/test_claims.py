@@ -87,7 +87,8 @@ def test_a_coarse_mesh_is_no_proof_of_a_conflict(share, feasible):
     assert (found.verdict is Verdict.GLOBAL_MINIMUM) == feasible
     assert (found.verdict is Verdict.INFEASIBLE) != feasible
     if not feasible:
-        assert found.diagnosis.sentence.startswith("No curve satisfies all conditions")
+        assert found.diagnosis.sentence.startswith("No curve satisfies all of '-1 <= u <= 2', 'x(0) = 0'")
+        assert len(found.diagnosis.findings) == 5  # without any one of them there would be room
 
 
 SECOND_ORDER = {

@@ -174,21 +174,6 @@ def test_a_problem_without_any_state_has_a_mesh_too():
     assert compiled(pursuit.problem).point.controls == 1
 
 
-def test_a_slope_that_vanishes_needs_no_fine_mesh():
-    """Dido's problem in polar form: r is constant, and r' nothing but the minimiser's noise, which is no error."""
-    problem = shape(
-        independent={"name": "p", "from": 0, "to": 1},
-        unknowns={"r": {"within": [0.1, 10]}},
-        functional={"seek": "maximum", "integrand": "r^2/2"},
-        endpoints=["r(0) = r(1)"],
-        constraints=["integral(sqrt(r^2 + r'^2)) = 1"],
-    )
-    pursuit = pursue(problem, None, far(), meshes=4)
-    assert pursuit.end is End.CONVERGED
-    assert len(pursuit.steps) == 2
-    assert pursuit.paths[-1].value == pytest.approx(1 / 2, rel=1e-9)
-
-
 def test_the_barrier_of_a_warm_start_is_smaller_where_intervals_are_narrow():
     wide = first_mesh(1)
     assert gentle_barrier(wide) == WARM["ipopt.mu_init"]

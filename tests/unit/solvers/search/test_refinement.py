@@ -7,7 +7,7 @@ from solvers.search.refinement import HIGHEST_DEGREE, NARROWEST, estimate, finer
 from solvers.transcription.collocation import Family
 from solvers.transcription.mesh import Mesh, interval, uniform
 from solvers.transcription.trajectory import curve
-from tests.unit.solvers.problems import LEAST_TIME, path_along, stated
+from tests.unit.solvers.problems import LEAST_TIME, path_along, shape, stated
 
 TOLERANCE = 1e-8
 COARSE = uniform(1, 4, 4)
@@ -29,6 +29,14 @@ def covers(mesh):
     return all(
         abs(piece.start + piece.width - right) < 1e-14 for piece, right in zip(mesh.intervals, edges[1:], strict=True)
     )
+
+
+def test_a_slope_that_is_nothing_but_noise_is_no_error():
+    """Where y stays at 2 to eleven digits, no mesh will resolve y' any better; but a slope of a hundredth counts."""
+    problem = shape(independent={"name": "x", "from": 0, "to": 1}, functional={"integrand": "y'^2"})
+    for slope, resolved in ((1e-11, True), (1e-2, False)):
+        path = path_along(COARSE, lambda x: 2 + 0 * x, lambda x, size=slope: size * np.sin(1e4 * x), problem)
+        assert (estimate(path).worst <= TOLERANCE) is resolved
 
 
 def test_a_smooth_function_raises_the_degree():
