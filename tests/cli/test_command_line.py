@@ -94,6 +94,15 @@ def test_a_weaker_verdict_is_told_by_the_exit_code():
     assert "Without any one of them the others can be met" in done.stdout
 
 
+def test_what_nothing_determines_is_in_the_summary():
+    document = {**LINE, "parameters": {"a": {"within": [-9, 9]}, "b": {"within": [-9, 9]}}}
+    document["functional"] = {"seek": "minimum", "integrand": "y'^2 + (a + b - 1)^2"}
+    done = _run("solve", "-", stdin=json.dumps(document))
+    assert done.returncode == 0
+    assert "Undetermined (one choice of many is shown)" in done.stdout
+    assert "Nothing determines a here: when it is moved together with b" in done.stdout
+
+
 def test_a_refused_document_is_printed_with_a_marker_under_the_place():
     document = {**LINE, "constraints": ["y <= h + 1"], "where": {"a": "b"}}
     for command in ("solve", "check"):

@@ -216,6 +216,18 @@ def test_an_infeasible_problem_is_a_finished_run(client, post):
     assert found["/constraints/0"]["unit"] == "m"
 
 
+def test_what_nothing_determines_is_part_of_the_result(client, post):
+    document = {**LINE, "unknowns": {"y": {"unit": "m"}, "z": {"unit": "m^2"}}, "dynamics": ["z' = y"]}
+    answer = post(document, prefer="wait=60").json()
+    result = client.get(answer["links"]["result"]).json()
+    assert result["verdict"] == "global minimum"
+    (found,) = result["undetermined"]
+    assert (found["name"], found["pointer"], found["where"]) == ("z", "/unknowns/z", None)
+    assert found["sentence"] in result["reading"]["notes"]
+    page = client.get(answer["links"]["page"]).text
+    assert "Nothing determines <code>z</code>" in page
+
+
 def test_check_reads_back_and_keeps_nothing(client, post):
     before = len(client.get(f"{RUNS}?limit=200").json()["runs"])
     answer = post(LINE, "/api/v1/check")

@@ -30,6 +30,7 @@ from solvers.solution import (
     SweepPoint,
     Verdict,
 )
+from solvers.undetermined import Undetermined
 from solvers.units import PLAIN, Unit
 from web.trajectory import read_costates, read_trajectory
 
@@ -95,6 +96,18 @@ SOLVED = Solution(
 
 def _archived(solution=SOLVED, **options):
     return result_document(DOCUMENT, PROBLEM, solution, {"notes": []}, {"read": 0.01}, **options)
+
+
+def test_what_nothing_determines_has_its_place_in_the_users_unit():
+    loose = (
+        Undetermined("x", "/unknowns/x", "Nothing determines x.", 0.1),
+        Undetermined("T", "/parameters/T", "Nor T."),
+    )
+    told = _archived(replace(SOLVED, undetermined=loose))["undetermined"]
+    assert told[0] == {"name": "x", "pointer": "/unknowns/x", "sentence": "Nothing determines x.",
+                       "where": {"place": pytest.approx(100.0), "subject": ""}}  # fmt: skip
+    assert told[1]["where"] is None
+    assert _archived()["undetermined"] == []
 
 
 def test_the_curve_says_the_same_in_the_users_units():

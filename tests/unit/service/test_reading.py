@@ -186,6 +186,12 @@ def test_freedom_is_counted():
 
 def test_the_natural_logarithm_is_pointed_out():
     assert reading(CRUCIBLE)["notes"] == ["log is the natural logarithm."]
+
+
+def test_what_nothing_determines_is_noted():
+    carried = HOSE | {"unknowns": {"y": {"unit": "m"}, "z": {"unit": "m^2"}}, "dynamics": ["z' = y"]}
+    (note,) = reading(carried)["notes"]
+    assert note.startswith("Nothing determines where z starts")
     assert reading(HOSE)["notes"] == []
 
 

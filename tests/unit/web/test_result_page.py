@@ -93,6 +93,18 @@ def test_a_diagnosis_says_the_reason_first_and_lists_the_findings(infeasible):
     assert made.preview is None and made.value == "" and not made.main_figures
 
 
+def test_what_nothing_determines_is_said_beside_the_verdict(hose):
+    loose = [
+        {"name": "a", "pointer": "/parameters/a", "where": None, "sentence": "Nothing determines a here."},
+        {"name": "y", "pointer": "/unknowns/y", "where": {"place": 1.5, "subject": ""}, "sentence": "Nothing holds y."},
+    ]
+    text = render(page(hose | {"undetermined": loose}))
+    assert '<h2 id="undetermined">Nothing determines <code>a</code> and <code>y</code></h2>' in text
+    assert "Nothing determines a here.</li>" in text
+    assert "Nothing holds y. Most at x = 1.5\N{NO-BREAK SPACE}m.</li>" in text
+    assert 'id="undetermined"' not in render(page(hose))
+
+
 def test_a_run_that_crashed_shows_its_problem_and_reason():
     bare = {
         "id": "abc",
