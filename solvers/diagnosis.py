@@ -68,7 +68,9 @@ def _of_conflicts(pursuit: Pursuit) -> str:
         proviso = " The conditions are not convex, so that one elsewhere is not excluded."
     sentence = f"{begin} {sets[0]}." + "".join(f" Nor {other}." for other in sets[1:])
     if any(len(conflict) > 1 for conflict in pursuit.conflicts):
-        sentence += " Without any one of them the others can be met; it says how far each would have to give alone."
+        sentence += (
+            " Without any one of them the others can be met; the amounts say how far each would have to give alone."
+        )
     return sentence + proviso
 
 
