@@ -20,6 +20,7 @@ from solvers.formula.printer import text
 from solvers.observations import terminal
 from solvers.problem import Condition, Place, Problem
 from solvers.tables.lookups import Lookups
+from solvers.transcription.derivatives import Differentiated
 from solvers.transcription.limits import number, quantity_bounds
 from solvers.transcription.lowering import Lowered, Quantity, simple_bound
 
@@ -61,8 +62,7 @@ OPERATIONS: dict[str, Callable[..., ca.SX]] = {
 }  # fmt: skip
 
 
-@dataclass(frozen=True, slots=True)
-class PointFunction:
+class PointFunction(Differentiated):
     """What happens at one point of the curve.
 
     Inputs: v = (states, controls, start and end of the stretch, parameters) and d = (fraction of the stretch,
@@ -70,49 +70,17 @@ class PointFunction:
     integral conditions, the integrand of the functional.  Rates and integrands are per fraction of the stretch.
     """
 
-    states: int
-    controls: int
-    constraints: int
-    integrals: int
-    value: ca.Function  # (v, d) -> all outputs
-    jacobian: ca.Function  # (v, d) -> nonzeros of the Jacobian of all outputs
-    jacobian_rows: list[int]
-    jacobian_columns: list[int]
-    hessian: ca.Function  # (v, d, weights of the outputs) -> nonzeros of the upper triangle
-    hessian_rows: list[int]
-    hessian_columns: list[int]
-
-    @property
-    def inputs(self) -> int:
-        """The length of v."""
-        return int(self.value.size1_in(0))
-
-    @property
-    def outputs(self) -> int:
-        """The number of outputs."""
-        return int(self.value.size1_out(0))
+    def __init__(self, v: ca.SX, d: ca.SX, outputs: ca.SX, lookups: Lookups, sizes: tuple[int, int, int, int]) -> None:
+        super().__init__("point", v, d, outputs, lookups)
+        self.states, self.controls, self.constraints, self.integrals = sizes
 
 
-@dataclass(frozen=True, slots=True)
-class EndFunction:
+class EndFunction(Differentiated):
     """What depends on values at places only.
 
-    Inputs: y = (states at every place, places, parameters, integrals) and the constants.  Outputs: the bodies of the
-    conditions, then the endpoint term of the functional.
+    Inputs: v = (states at every place, places, parameters, integrals) and d = the constants.  Outputs: the bodies of
+    the conditions, then the endpoint term of the functional.
     """
-
-    value: ca.Function
-    jacobian: ca.Function
-    jacobian_rows: list[int]
-    jacobian_columns: list[int]
-    hessian: ca.Function
-    hessian_rows: list[int]
-    hessian_columns: list[int]
-
-    @property
-    def outputs(self) -> int:
-        """The number of outputs."""
-        return int(self.value.size1_out(0))
 
 
 @dataclass(frozen=True, slots=True)
@@ -205,8 +173,8 @@ def _point_function(
     cost = length * here.formula(problem.integrand) if problem.integrand is not None else ca.SX(0)
     v, d = ca.vertcat(x, u, start, end, parameters), ca.vertcat(fraction, constants)
     outputs = ca.vertcat(*rates, *bodies, *weighed, cost)
-    function = PointFunction(len(lowered.states), len(lowered.controls), len(bodies), len(weighed),
-                             *_with_derivatives("point", v, d, outputs, lookups))  # fmt: skip
+    sizes = len(lowered.states), len(lowered.controls), len(bodies), len(weighed)
+    function = PointFunction(v, d, outputs, lookups, sizes)
     return function, tuple(pointwise), tuple(bounds)
 
 
@@ -254,7 +222,7 @@ def _end_function(
     outside = Environment(lowered, {}, numbers, lookups, value_at)
     outputs = ca.vertcat(*(outside.formula(tree) for tree in (*trees, term)))
     y = ca.vertcat(*values, places, parameters, totals)
-    function = EndFunction(*_with_derivatives("end", y, constants, outputs, lookups))
+    function = EndFunction("end", y, constants, outputs, lookups)
     return tuple(conditions), tuple(fixed), tuple(rims), function
 
 
@@ -296,38 +264,6 @@ def place_index(places: tuple[Place, ...], tree: Node) -> int:
 def _key(tree: Node) -> float | str:
     """What makes two ways to write a place the same."""
     return tree.value if isinstance(tree, Number) else text(tree)
-
-
-def _with_derivatives(
-    name: str, v: ca.SX, d: ca.SX, outputs: ca.SX, lookups: Lookups
-) -> tuple[ca.Function, ca.Function, list[int], list[int], ca.Function, list[int], list[int]]:
-    """The function, the nonzeros of its Jacobian and of its weighted Hessian's upper triangle, with their places."""
-    weights = ca.SX.sym("w", outputs.size1())
-    jacobian = ca.jacobian(outputs, v)
-    hessian = ca.triu(ca.hessian(ca.dot(weights, outputs), v)[0])
-    jacobian_columns, jacobian_rows = _places(jacobian.sparsity())
-    hessian_columns, hessian_rows = _places(hessian.sparsity())
-    value, slopes, curvatures = lookups.settled([ca.densify(outputs), _column(jacobian), _column(hessian)])
-    return (
-        ca.Function(name, [v, d], [value]),
-        ca.Function(name + "_jacobian", [v, d], [slopes]),
-        jacobian_rows,
-        jacobian_columns,
-        ca.Function(name + "_hessian", [v, d, weights], [curvatures]),
-        hessian_rows,
-        hessian_columns,
-    )
-
-
-def _column(matrix: ca.SX) -> ca.SX:
-    """The nonzeros of a matrix as one column."""
-    return ca.vec(matrix[matrix.sparsity().find()]) if matrix.nnz() else ca.SX(0, 1)
-
-
-def _places(sparsity: ca.Sparsity) -> tuple[list[int], list[int]]:
-    """Column and row of every nonzero, in CasADi's order."""
-    rows, columns = sparsity.get_triplet()
-    return list(columns), list(rows)
 
 
 def with_constants(compiled: Compiled, values: Mapping[str, float]) -> Compiled:
