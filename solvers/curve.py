@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.polynomial import legendre
@@ -14,7 +15,7 @@ from solvers.series import basis, side_by_side
 Array = NDArray[np.float64]
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(frozen=True)
 class Curve:
     """Functions of the independent variable on one mesh.
 
@@ -26,6 +27,11 @@ class Curve:
     breaks: Array
     functions: Mapping[str, tuple[Array, ...]]
 
+    @cached_property
+    def _tables(self) -> dict[str, Array]:
+        """Coefficients of the functions that were asked for, side by side."""
+        return {}
+
     def evaluate(self, name: str, places: Array, derivative: int = 0) -> Array:
         """Values of `name` (or of its derivative) at `places`; at a break the interval on its left speaks.
 
@@ -35,7 +41,9 @@ class Curve:
         owner = np.clip(np.searchsorted(self.breaks, places, side="left") - 1, 0, len(self.breaks) - 2)
         left, right = self.breaks[owner], self.breaks[owner + 1]
         local = (2 * places - left - right) / (right - left)
-        coefficients = side_by_side(self.functions[name])
+        if name not in self._tables:
+            self._tables[name] = side_by_side(self.functions[name])
+        coefficients = self._tables[name]
         if derivative:
             coefficients = np.asarray(legendre.legder(coefficients, derivative, axis=1), dtype=float)
         values = (basis(local, coefficients.shape[1] - 1) * coefficients[owner]).sum(axis=-1)

@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 from solvers import checks
 from solvers.answers.fit import fit
 from solvers.answers.prices import prices
-from solvers.answers.sensitivity import slopes
+from solvers.answers.sensitivity import Shift, limit_shifts, slopes
 from solvers.checks import curvature, lower_bound, refinement
 from solvers.checks.redundancy import unambiguous
 from solvers.curve import Curve
@@ -358,8 +358,9 @@ def _solution(
     left_out = ""
     if not brief:
         multipliers, bought = costate_curve(path), prices(path)
-        depends = () if verdict in NO_OPTIMUM_FOUND else slopes(path)
-        altered, left_out = _changes(path, depends)
+        shifts = () if verdict in NO_OPTIMUM_FOUND else limit_shifts(path)
+        depends = slopes(path, shifts) if shifts else ()
+        altered, left_out = _changes(path, depends, shifts)
     if gauged is not None:
         factor = gauged.slope(value)
         anew = tuple(check for check in made if check.name not in known)  # those taken over are told already
@@ -452,7 +453,7 @@ def _with_uprights(pursuit: Pursuit, gauged: Gauged) -> Pursuit:
     return pursuit
 
 
-def _changes(path: Trajectory, depends: tuple[Slope, ...]) -> tuple[tuple[Change, ...], str]:
+def _changes(path: Trajectory, depends: Sequence[Slope], shifts: Sequence[Shift]) -> tuple[tuple[Change, ...], str]:
     """How the tolerances of the constants change the curve; where that is left out, why."""
     if not any(slope.tolerance for slope in depends):
         return (), ""
@@ -461,7 +462,7 @@ def _changes(path: Trajectory, depends: tuple[Slope, ...]) -> tuple[tuple[Change
     from solvers.answers.response import SingularError, changes  # here, so that SciPy is loaded only where it is needed
 
     try:
-        return changes(path), ""
+        return changes(path, shifts), ""
     except SingularError:
         return (), UNDETERMINED
 

@@ -10,7 +10,7 @@ memory).
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import replace
 from functools import cached_property
 from typing import Any
@@ -19,8 +19,9 @@ import numpy as np
 from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
-from solvers.answers.sensitivity import Shift, end_weights, limit_shifts, point_weights
+from solvers.answers.sensitivity import Shift, end_weights, point_weights
 from solvers.curve import Curve
+from solvers.minimise.optimality import Optimality
 from solvers.solution import Change
 from solvers.transcription.evaluation import end_inputs, point_inputs
 from solvers.transcription.layout import calm_entries
@@ -46,23 +47,18 @@ class Response:
     """The optimality system at a solution: its matrix in the free variables and the active rows (scaled)."""
 
     def __init__(self, path: Trajectory) -> None:
-        from scipy.sparse import bmat, triu
-
         self.path, program = path, path.program
         numbers, size = program.numbers, abs(program.value_scale)
         z = path.z / program.scale
         rows = path.row_multipliers * program.row_scale / size
-        upper = numbers.hessian_pattern.filled(numbers.hessian(z, 1.0, rows))
-        self.hessian = (upper + triu(upper, 1).T).tocsr()
-        self.jacobian = numbers.jacobian_pattern.filled(numbers.jacobian(z)).tocsr()
+        self._hessian, self._jacobian = numbers.hessian(z, 1.0, rows), numbers.jacobian(z)
         self.sides = _sides(path.bound_multipliers * program.scale / size, z, program.lower, program.upper)
         self.row_sides = _sides(rows, numbers.constraints(z), program.row_lower, program.row_upper)
         self.free, active = np.flatnonzero(self.sides == 0), np.flatnonzero(self.row_sides)
-        block = self.jacobian[active][:, self.free]
-        says = np.asarray(abs(block).sum(axis=1)).ravel() > 0  # a row without free variables says nothing more
-        says &= ~np.isin(active, self._repeated())
-        self.active, block = active[says], block[np.flatnonzero(says)]
-        self.matrix = bmat([[self.hessian[self.free][:, self.free], block.T], [block, None]], format="csc")
+        says = numbers.jacobian_pattern.times((self.sides == 0).astype(float), np.abs(self._jacobian)) > 0
+        says[self._repeated()] = False
+        self.active = active[says[active]]  # a row without free variables says nothing more
+        self.matrix = Optimality(program, self.free, self.active).matrix(self._hessian, self._jacobian)
 
     def _repeated(self) -> Indices:
         """Rows that keep a control calm and say no more than others do: its values rest on a limit in places."""
@@ -72,9 +68,12 @@ class Response:
         first = program.rows.rims + len(program.compiled.rims)
         owners = np.array([owner for _, owner, _ in calm_entries(program.compiled, program.mesh)], dtype=np.int64)
         repeated: list[int] = []
+        if not len(owners):
+            return np.array(repeated, dtype=np.int64)
+        jacobian = program.numbers.jacobian_pattern.filled(self._jacobian).tocsr()
         for owner in np.unique(owners):
             own = first + np.flatnonzero(owners == owner)
-            block = self.jacobian[own][:, self.free]
+            block = jacobian[own][:, self.free]
             triangle, order = qr(block[:, np.unique(block.indices)].toarray().T, mode="r", pivoting=True)
             size = np.abs(np.diag(triangle[: len(own)]))
             rank = int(np.count_nonzero(size > 1e-10 * max(float(size.max(initial=0.0)), 1e-300)))
@@ -113,17 +112,24 @@ class Response:
         moved = self._carried(shift)
         limits = np.where(self.row_sides < 0, shift.row_lower, shift.row_upper) / self.path.program.row_scale
         return np.concatenate([
-            gradient[self.free] + (self.hessian @ moved)[self.free],
-            (rows - limits + self.jacobian @ moved)[self.active],
+            (gradient + self._bent(moved))[self.free],
+            (rows - limits + self.path.program.numbers.jacobian_pattern.times(moved, self._jacobian))[self.active],
         ])  # fmt: skip
 
     def residual(self) -> Array:
         """The system's left side: slopes of the Lagrangian, then how far the active rows are from their limits."""
         program, path = self.path.program, self.path
         z, rows = path.z / program.scale, path.row_multipliers * program.row_scale / abs(program.value_scale)
-        slopes = program.numbers.gradient(z) + self.jacobian.T @ rows
+        pattern = program.numbers.jacobian_pattern
+        slopes = program.numbers.gradient(z) + pattern.times_from_left(rows, self._jacobian)
         limits = np.where(self.row_sides < 0, program.row_lower, program.row_upper)
         return np.concatenate([slopes[self.free], (program.numbers.constraints(z) - limits)[self.active]])
+
+    def _bent(self, moved: Array) -> Array:
+        """The Hessian times a vector; it is known by its upper triangle."""
+        pattern = self.path.program.numbers.hessian_pattern
+        below = np.where(pattern.rows == pattern.columns(), 0.0, self._hessian)
+        return pattern.times(moved, self._hessian) + pattern.times_from_left(moved, below)
 
     def _carried(self, shift: Shift) -> Array:
         """How limits carry along the variables that rest on them (scaled); places are in `by_constant`."""
@@ -201,17 +207,17 @@ def _first(function: Any, *arguments: Array) -> Array:
     return np.asarray(made[0] if isinstance(made, tuple | list) else made).T
 
 
-def changes(path: Trajectory) -> tuple[Change, ...]:
+def changes(path: Trajectory, shifts: Sequence[Shift]) -> tuple[Change, ...]:
     """Of the curve with every constant that has a tolerance, at fixed places of the independent variable.
 
-    Raises `SingularError`.
+    `shifts` are those of the limits with every constant.  Raises `SingularError`.
     """
     problem = path.program.compiled.lowered.problem
     constants, where = problem.constants, path.program.layout
     wanted = [index for index, constant in enumerate(constants) if constant.tolerance]
     if not wanted:
         return ()
-    response, shifts = Response(path), limit_shifts(path)
+    response = Response(path)
     found = []
     for k in wanted:
         change = response.to(k, shifts[k]) * (constants[k].tolerance or 0.0)

@@ -30,13 +30,15 @@ STEP = 1e-3
 """Step, relative to a constant, of the differences of limits; their error is of the fourth order, so below rounding."""
 
 
-def slopes(path: Trajectory) -> tuple[Slope, ...]:
-    """Of every constant in SI, in the user's sense of the value; NaN where the value has no slope with it."""
+def slopes(path: Trajectory, shifts: Sequence[Shift]) -> tuple[Slope, ...]:
+    """Of every constant in SI, in the user's sense of the value; NaN where the value has no slope with it.
+
+    `shifts` are those of the limits with every constant.
+    """
     problem = path.program.compiled.lowered.problem
     if not problem.constants:
         return ()
     by_constants, by_places = partial_of_formulas(path)
-    shifts = limit_shifts(path)
     places = np.array([shift.lower[path.program.layout.places] for shift in shifts])
     total = by_constants + places @ by_places - shift_of_limits(path, shifts)
     sign = -1.0 if problem.seek is Seek.MAXIMUM else 1.0

@@ -28,10 +28,8 @@ def second_variation(sampler: Sampler) -> tuple[sp.csc_matrix, sp.csc_matrix]:
     """
     program, where = sampler.path.program, sampler.path.program.layout
     rows, columns, forms, norms = [], [], [], []
-    schemes = {id(i.scheme): i.scheme for i in program.mesh.intervals}
-    owners = np.array([id(i.scheme) for i in program.mesh.intervals])
-    for key, scheme in schemes.items():
-        members = np.flatnonzero(owners == key)
+    for group in program.mesh.alike:
+        members, scheme = group.members, group.scheme
         local, weights = grid_for(scheme.degree)
         sample = _sample(sampler, members, local)
         trial = _trial(sampler, scheme.state_modes, scheme.control_modes, local)
@@ -40,7 +38,7 @@ def second_variation(sampler: Sampler) -> tuple[sp.csc_matrix, sp.csc_matrix]:
         rows.append(np.broadcast_to(own[:, :, None], block).ravel())
         columns.append(np.broadcast_to(own[:, None, :], block).ravel())
         forms.append(_condensed(trial, _bends(sampler, sample, weights)).ravel())
-        norms.append(_condensed(trial, _sizes(sampler, members, weights)).ravel())
+        norms.append(_squares(sampler, members, trial, weights).ravel())
     row, column = np.concatenate(rows), np.concatenate(columns)
     scale = program.scale[row] * program.scale[column] / abs(program.value_scale)
     shape = (where.size, where.size)
@@ -82,14 +80,14 @@ def _bends(sampler: Sampler, sampled: tuple[Sample, Array], weights: Array) -> A
     return bends.reshape(-1, len(weights), point.inputs, point.inputs)
 
 
-def _sizes(sampler: Sampler, members: Indices, weights: Array) -> Array:
-    """The same for the sum of squares of the states relative to their sizes."""
+def _squares(sampler: Sampler, members: Indices, trial: Array, weights: Array) -> Array:
+    """The form of the mean square of the states relative to their sizes, times the value's, for each interval."""
     n, m = sampler.point.states, sampler.point.controls
     kind = slice(0, n) if n else slice(n, n + m)
-    inverse = np.zeros(sampler.point.inputs)
-    inverse[kind] = 1 / sampler.input_sizes[kind] ** 2
-    share = np.abs(sampler.length[members, None] * weights / sampler.span)
-    return np.asarray(share[:, :, None, None] * np.diag(inverse) * sampler.value_size)
+    relative = trial[:, kind] / sampler.input_sizes[kind][:, None] * np.sqrt(weights)[:, None, None]
+    flat = relative.reshape(-1, trial.shape[2])
+    share = np.abs(sampler.length[members] / sampler.span) * sampler.value_size
+    return np.asarray(share[:, None, None] * (flat.T @ flat))
 
 
 def _trial(sampler: Sampler, state_modes: Array, control_modes: Array, local: Array) -> Array:

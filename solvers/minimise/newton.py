@@ -17,10 +17,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from solvers.minimise.ipopt import Iterate, Minimum, Outcome, Start
+from solvers.minimise.optimality import Optimality
 from solvers.transcription.program import Program
 
 Array = NDArray[np.float64]
-Indices = NDArray[np.int64]
 
 STEPS = 80
 TOLERANCE = 1e-11
@@ -111,27 +111,8 @@ class _System:
         self.equal = np.flatnonzero(program.row_lower == program.row_upper)
 
     @cached_property
-    def _places(self) -> tuple[Indices, Indices, Indices]:
-        """Of the system's matrix by compressed columns: rows, starts, and for each nonzero which one it is of those of
-        the Hessian's upper triangle followed by the Jacobian's."""
-        numbers, size = self.program.numbers, len(self.free) + len(self.equal)
-        variable, condition = np.full(len(self.program.lower), -1), np.full(self.program.rows.count, -1)
-        variable[self.free] = np.arange(len(self.free))
-        condition[self.equal] = len(self.free) + np.arange(len(self.equal))
-        hessian, jacobian = numbers.hessian_pattern, numbers.jacobian_pattern
-        rows = np.concatenate([variable[hessian.rows], condition[jacobian.rows]])
-        columns = np.concatenate([variable[hessian.columns()], variable[jacobian.columns()]])
-        kept = np.flatnonzero((rows >= 0) & (columns >= 0))
-        rows, columns = rows[kept], columns[kept]
-        mirrored = rows != columns
-        rows, columns, kept = (
-            np.concatenate([rows, columns[mirrored]]),
-            np.concatenate([columns, rows[mirrored]]),
-            np.concatenate([kept, kept[mirrored]]),
-        )
-        order = np.argsort(columns * size + rows)
-        starts = np.searchsorted(columns[order], np.arange(size + 1))
-        return rows[order], starts, kept[order]
+    def _optimality(self) -> Optimality:
+        return Optimality(self.program, self.free, self.equal)
 
     def value(self, z: Array) -> float:
         return self.program.numbers.value(z)
@@ -155,15 +136,12 @@ class _System:
 
     def step(self, z: Array, multipliers: Array, residual: Array) -> Array | None:
         """Newton's step, or None where the system is singular."""
-        from scipy.sparse import csc_matrix
         from scipy.sparse.linalg import splu
 
         weights = np.zeros(self.program.rows.count)
         weights[self.equal] = multipliers[self.equal]
         numbers = self.program.numbers
-        rows, starts, source = self._places
-        nonzeros = np.concatenate([numbers.hessian(z, 1.0, weights), numbers.jacobian(z)])[source]
-        matrix = csc_matrix((nonzeros, rows, starts), shape=(len(starts) - 1,) * 2)
+        matrix = self._optimality.matrix(numbers.hessian(z, 1.0, weights), numbers.jacobian(z))
         try:
             step = splu(matrix).solve(-residual)
         except RuntimeError:

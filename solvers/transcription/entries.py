@@ -33,6 +33,10 @@ class Pattern:
 
         return csc_matrix((nonzeros, self.rows, self.starts), shape=self.shape)
 
+    def times(self, vector: Array, nonzeros: Array) -> Array:
+        """The product matrix.vector."""
+        return counted(self.rows, vector[self.columns()] * nonzeros, self.shape[0])
+
     def times_from_left(self, vector: Array, nonzeros: Array) -> Array:
         """The product vector.matrix."""
         return counted(self.columns(), vector[self.rows] * nonzeros, self.shape[1])
