@@ -44,12 +44,14 @@ END_CUT = 0.12
 @dataclass(frozen=True, slots=True)
 class Estimate:
     """Per interval: `errors` relative to each quantity's size, and the coefficients that tell the `shape` of the worst
-    quantity and of the one that shows best where the curve `bends`.
+    quantity and of the one that shows best where the curve `bends`.  `gained` (SI) is by how much the value may be too
+    good as limits are left between the points: how far, times what the limit pushes, to first order.
     """
 
     errors: Array
     shapes: tuple[Array, ...]
     bends: tuple[Array, ...]
+    gained: float = 0.0
 
     @property
     def worst(self) -> float:
@@ -89,31 +91,42 @@ def estimate(path: Trajectory) -> Estimate:
         errors[k] = error
         shapes.append(shape)
         bends.append(bend)
-    _add_excess(path, errors)
-    return Estimate(errors, tuple(shapes), tuple(bends))
+    gained = _add_excess(path, errors)
+    return Estimate(errors, tuple(shapes), tuple(bends), gained)
 
 
 BETWEEN = np.linspace(-1.0, 1.0, 15)
 """Places, in the local variable, at which limits are looked at between the points."""
 
 
-def _add_excess(path: Trajectory, errors: Array) -> None:
-    """Count as an error how far states leave their bounds, and constraints their limits, between the points."""
+def _add_excess(path: Trajectory, errors: Array) -> float:
+    """Count as an error how far states leave their bounds, and constraints their limits, between the points.
+
+    Returns what that may gain of the value.
+    """
     compiled = path.program.compiled
     lower, upper, _, _ = quantity_bounds(compiled)
     bounded = np.isfinite(lower) | np.isfinite(upper)
     limits = np.array([interval_of(c, constants_of(compiled)) for c in compiled.pointwise]).reshape(-1, 2)
     unequal = limits[:, 0] < limits[:, 1]
     if not bounded.any() and not unequal.any():
-        return
+        return 0.0
+    first, rows = path.program.layout.first[:-1], path.program.rows
     states = basis(BETWEEN, path.state_modes.shape[1] - 1) @ path.state_modes
-    excess = np.maximum(lower - states, states - upper)[:, :, bounded] / sizes_of(path)[0][bounded]
-    errors[:] = np.maximum(errors, excess.max(axis=(1, 2), initial=0.0))
+    excess = np.maximum(lower - states, states - upper)[:, :, bounded].max(axis=1, initial=0.0)
+    sizes = sizes_of(path)[0][bounded]
+    errors[:] = np.maximum(errors, (excess / sizes).max(axis=1, initial=0.0))
+    pushes = np.abs(path.bound_multipliers[path.program.layout.inner])[:, bounded]
+    gained = float((np.add.reduceat(pushes, first, axis=0) * excess).sum())
     if unequal.any():
         bodies = _bodies_between(path, states)[:, :, unequal]
-        sizes = path.program.row_scale[path.program.rows.pointwise :][: len(limits)][unequal]
-        excess = np.maximum(limits[unequal, 0] - bodies, bodies - limits[unequal, 1]) / sizes
-        errors[:] = np.maximum(errors, np.nan_to_num(excess).max(axis=(1, 2), initial=0.0))
+        sizes = path.program.row_scale[rows.pointwise :][: len(limits)][unequal]
+        excess = np.nan_to_num(np.maximum(limits[unequal, 0] - bodies, bodies - limits[unequal, 1]))
+        excess = excess.max(axis=1, initial=0.0)
+        errors[:] = np.maximum(errors, (excess / sizes).max(axis=1, initial=0.0))
+        pushes = np.abs(path.row_multipliers[rows.pointwise : rows.rims]).reshape(-1, len(limits))[:, unequal]
+        gained += float((np.add.reduceat(pushes, first, axis=0) * excess).sum())
+    return gained
 
 
 def _bodies_between(path: Trajectory, states: Array) -> Array:

@@ -27,14 +27,14 @@ def estimate_errors(pursuit: Pursuit, found: refinement.Estimate) -> None:
     """Errors of value and curve from the last two meshes: their difference, and how much the mesh has improved since.
 
     The difference alone is the error of the mesh before; local errors that fell by a factor f let the value's error
-    fall at least by f.
+    fall at least by f.  What the curve gains by leaving limits between the points is seen on one mesh alone.
     """
     now, before = pursuit.paths[-1], pursuit.paths[-2]
     last = pursuit.steps[-2].error or 0.0
     gain = float(np.clip(found.worst / last, LEAST_GAIN, 1.0)) if last > 0 else 1.0
     size = max(abs(now.value), abs(now.program.value_scale))
     change = abs(now.value - before.value)
-    pursuit.value_error = 2 * gain * change + size * found.worst**2 + FLOOR * size
+    pursuit.value_error = 2 * gain * change + size * found.worst**2 + FLOOR * size + found.gained
     pursuit.curve_error = gain * distance(now, before) + found.worst
 
 

@@ -7,6 +7,7 @@ from collections.abc import Iterator
 from solvers.deadline import Deadline
 from solvers.problem import Problem
 from solvers.search.chatter import one_more
+from solvers.search.joined import joined
 from solvers.search.pursuit import go_on, pursue
 from solvers.search.record import End, Pursuit
 from solvers.search.structure import (
@@ -47,7 +48,7 @@ def sharpen(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit |
         if sharp is not None:
             found.append(sharp)
     for sharp in sorted(found, key=lambda pursuit: pursuit.value_error)[:1]:
-        for _ in range(ROUNDS):
+        for _ in range(0 if _suffices(sharp) else ROUNDS):
             again = with_structure(base, sharp.paths[-1], watch, deadline)
             if again is None or again.value_error > sharp.value_error:
                 break
@@ -56,6 +57,11 @@ def sharpen(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit |
                 break
         return _with_more_switches(base, sharp, watch, deadline)
     return None
+
+
+def _suffices(sharp: Pursuit) -> bool:
+    """Whether all is found that counts: what still moves from mesh to mesh hardly changes the value."""
+    return sharp.shown and (sharp.steps[-1].error or 0.0) <= sharp.problem.options.tolerance
 
 
 def _calmed(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Iterator[Trajectory]:
@@ -74,22 +80,31 @@ def _calmed(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Iterator[
 def with_structure(base: Pursuit, path: Trajectory, watch: Watch | None, deadline: Deadline) -> Pursuit | None:
     """Read switches off a path and solve with them; None where there are none or the answer is not believable.
 
-    A switch that ends at the edge of the room it was given is looked at again from there.
+    A switch that ends at the edge of the room it was given is looked at again from there; where a limit that is held
+    would rather be left, an arc that the mesh may have seen as two is tried as one.
     """
     linear = [base.compiled.lowered.controls[index] for index in linear_controls(base.compiled)]
+    changed: Problem | None = None
     for _ in range(ROUNDS):
-        found = sorted([*switches(path, linear), *present_switches(path)], key=lambda switch: switch.place)
-        changed = with_switches(base.problem, found, path, linear)
+        if changed is None:
+            found = sorted([*switches(path, linear), *present_switches(path)], key=lambda switch: switch.place)
+            changed = with_switches(base.problem, found, path, linear)
         if changed is None:
             return None
         pursuit = pursue(changed, watch, deadline, meshes=2, start=path, mesh=_mesh(changed))
         if not pursuit.solved:
             return None
         path = pursuit.paths[-1]
-        if not at_the_edge(path):
-            if not _agrees(pursuit, base) or not held_rightly(path):
-                return None
+        if at_the_edge(path):
+            changed = None
+            continue
+        if not _agrees(pursuit, base):
+            return None
+        if held_rightly(path):
             return pursuit if pursuit.end is End.CONVERGED else go_on(pursuit, watch, deadline, 4)
+        changed = joined(changed)
+        if changed is None:
+            return None
     return None
 
 

@@ -202,9 +202,10 @@ def _merged(found: list[Switch], path: Trajectory) -> list[Switch]:
 def with_switches(problem: Problem, found: list[Switch], path: Trajectory, linear: list[Quantity]) -> Problem | None:
     """The problem with its switches as free places, each between its neighbours, and with its bang arcs held.
 
-    `linear` are the controls that act linearly; they are calm where they are free.
+    `linear` are the controls that act linearly; they are calm where they are free, which may be all along.
 
-    A switch on both sides of which the same controls are held on the same limits is none; None where none is left.
+    A switch on both sides of which the same controls are held on the same limits is none; None where neither a switch
+    is left nor a control to be calmed.
     """
     own = _own_places(problem, path)
     kept = _without_collapsed(found, COLLAPSED * float(np.ptp(path.places)))
@@ -217,7 +218,8 @@ def with_switches(problem: Problem, found: list[Switch], path: Trajectory, linea
         if simpler is None:
             break
         kept = simpler
-    if not kept:
+    calm = _calm(linear, len(spots) - 1, held)
+    if not kept and not calm:
         return None
     places: list[Place] = []
     parameters: list[Parameter] = []
@@ -232,7 +234,6 @@ def with_switches(problem: Problem, found: list[Switch], path: Trajectory, linea
             places.append(Place(Name(name), name))
         else:
             places.append(place)
-    calm = _calm(linear, len(places) - 1, held)
     parameters = [*problem.parameters, *parameters]
     return replace(problem, places=tuple(places), parameters=tuple(parameters), held=held, calm=calm,
                    touches=tuple(touches))  # fmt: skip
@@ -272,7 +273,8 @@ def _without_contradiction(kept: list[Switch], spots: list[Spot], held: tuple[He
 def _without_needless(kept: list[Switch], spots: list[Spot], held: tuple[Held, ...]) -> list[Switch] | None:
     """Fewer switches where one has the same on both sides."""
     for index, (at, place) in enumerate(spots):
-        if isinstance(place, Switch) and place.touching is None and _on(held, index - 1) == _on(held, index):
+        same = on_limits(held, index - 1) == on_limits(held, index)
+        if isinstance(place, Switch) and place.touching is None and same:
             return [switch for switch in kept if switch.place != at]
     return None
 
@@ -300,7 +302,7 @@ def present_switches(path: Trajectory) -> list[Switch]:
         if not place.label.startswith(SWITCH + " "):
             continue
         at, touching = float(path.places[index]), touches.get(place.label)
-        changed = _on(problem.held, index - 1) ^ _on(problem.held, index)
+        changed = on_limits(problem.held, index - 1) ^ on_limits(problem.held, index)
         names = {name for name, _, _ in changed} | ({touching[0][0]} if touching else set())
         found.append(Switch(at, at, at, touching, frozenset(names)))
     return found
@@ -315,7 +317,8 @@ def at_the_edge(path: Trajectory) -> bool:
     )
 
 
-def _on(held: tuple[Held, ...], stretch: int) -> set[tuple[str, int, int]]:
+def on_limits(held: tuple[Held, ...], stretch: int) -> set[tuple[str, int, int]]:
+    """What is held along a stretch, and on which side."""
     return {(h.name, h.order, h.side) for h in held if h.stretch == stretch}
 
 
@@ -339,7 +342,7 @@ def _held(path: Trajectory, places: Array) -> tuple[Held, ...]:
 def _calm(linear: list[Quantity], stretches: int, held: tuple[Held, ...]) -> tuple[Calm, ...]:
     """The linear controls along the stretches where nothing is held: they run singular there."""
     return tuple(
-        Calm(stretch, *quantity) for quantity in linear for stretch in range(stretches) if not _on(held, stretch)
+        Calm(stretch, *quantity) for quantity in linear for stretch in range(stretches) if not on_limits(held, stretch)
     )
 
 

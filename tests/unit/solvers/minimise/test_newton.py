@@ -3,8 +3,8 @@
 import numpy as np
 import pytest
 
-from solvers.minimise.ipopt import Outcome, Start
-from solvers.minimise.newton import stationary_point
+from solvers.minimise.ipopt import Outcome, Start, minimise
+from solvers.minimise.newton import minimum_nearby, stationary_point
 from solvers.solution import Status, Verdict
 from solvers.solve import solve
 from solvers.transcription.mesh import uniform
@@ -53,3 +53,39 @@ def test_what_is_stationary_is_not_called_a_minimum():
     assert found["conjugate points"] is Status.FAILED
     assert found["stationarity"] is Status.PASSED
     assert solution.value == pytest.approx(1 / np.tan(4) / 2, rel=1e-9)
+
+
+def near(bounds, away):
+    """A minimum, and what is found from variables that are so far away from it."""
+    problem = stated(unknowns={"x": {}, "u": bounds}, functional={"integrand": "u^2 + x^4"})
+    program = program_of(problem, uniform(1, 6, 6))
+    found = minimise(program, Start(np.full(program.layout.size, 0.1)))
+    moved = found.z + away * np.cos(np.arange(len(found.z)))
+    start = Start(moved, found.bound_multipliers, found.multipliers)
+    return found, minimum_nearby(program, start, lambda iterate: False)
+
+
+def test_whole_steps_go_straight_to_a_minimum_nearby():
+    found, again = near({}, 1e-3)
+    assert again.outcome is Outcome.SOLVED
+    assert again.iterations <= 4
+    np.testing.assert_allclose(again.z, found.z, atol=1e-8)
+    np.testing.assert_allclose(again.multipliers, found.multipliers, atol=1e-8)
+
+
+def test_far_away_or_where_a_limit_binds_the_minimiser_has_to_look():
+    assert near({}, 1e3)[1] is None
+    assert near({"within": [None, 1.05]}, 1e-3)[1] is None  # u would be larger somewhere
+
+
+def test_a_step_across_a_limit_is_none():
+    """On a coarser mesh the limit did not bind, here the curve would cross it."""
+    problem = stated(
+        unknowns={"x": {"within": [None, 0.2]}, "u": {}},
+        functional={"integrand": "u^2 - 4*x"},
+        endpoints=["x(0) = 0", "x(1) = 0"],
+    )  # without the limit x = t (1 - t), which rises to 0.25
+    program = program_of(problem, uniform(1, 6, 6))
+    size = program.layout.size
+    start = Start(np.full(size, 0.1), np.zeros(size), np.zeros(program.rows.count))
+    assert minimum_nearby(program, start, lambda iterate: False) is None

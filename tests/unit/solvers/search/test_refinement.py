@@ -1,5 +1,7 @@
 """Refinement: degree where a curve is smooth, cuts where it is not, both told from its coefficients alone."""
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 
@@ -141,3 +143,17 @@ def test_finer_raises_every_degree():
     mesh = finer(COARSE)
     assert mesh.degrees() == (6, 6)
     np.testing.assert_array_equal(breaks_of(mesh), breaks_of(COARSE))
+
+
+def test_what_a_curve_gains_between_the_points_counts():
+    """x rises to its limit only between two points: by so much times the push there the value may be too good."""
+    problem = stated(unknowns={"x": {"within": [None, 0.25]}, "u": {}}, endpoints=["x(0) = 0", "x(1) = 0"])
+    mesh = uniform(1, 1, 3)
+    path = path_along(mesh, lambda t: 1.03 * t * (1 - t), lambda t: 1.03 * (1 - 2 * t), problem)
+    excess = 1.03 / 4 - 0.25
+    assert estimate(path).worst >= 0.9 * excess
+    assert estimate(path).gained == 0  # nothing pushes
+    pushes = np.zeros_like(path.bound_multipliers)
+    pushes[path.program.layout.inner[1, 0]] = 7.0
+    gained = estimate(replace(path, bound_multipliers=pushes)).gained
+    assert gained == pytest.approx(7 * excess, rel=1e-2)

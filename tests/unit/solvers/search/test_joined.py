@@ -1,0 +1,63 @@
+"""An arc that a mesh has seen as two is one again."""
+
+from dataclasses import replace
+
+from solvers.formula.nodes import Name
+from solvers.problem import Calm, Held, Parameter, Place
+from solvers.search.joined import joined
+from solvers.solution import Verdict
+from solvers.solve import solve
+from tests.unit.solvers.problems import stated
+
+
+def cut(held, calm=()):
+    """A problem on 0 to 1 with four switches."""
+    problem = stated()
+    names = [f"switch {k}" for k in (1, 2, 3, 4)]
+    return replace(
+        problem,
+        places=(problem.places[0], *(Place(Name(name), name) for name in names), problem.places[1]),
+        parameters=tuple(Parameter(name, 0, 1) for name in names),
+        held=held,
+        calm=calm,
+    )
+
+
+def test_two_arcs_on_one_limit_become_one():
+    whole = joined(cut((Held(1, "x", 0, 1), Held(3, "x", 0, 1)), (Calm(0, "u", 0), Calm(2, "u", 0), Calm(4, "u", 0))))
+    assert [place.label for place in whole.places] == ["0", "switch 1", "switch 4", "1"]
+    assert [p.name for p in whole.parameters] == ["switch 1", "switch 4"]
+    assert whole.held == (Held(1, "x", 0, 1),)
+    assert whole.calm == (Calm(0, "u", 0), Calm(2, "u", 0))
+
+
+def test_arcs_on_different_limits_stay_two():
+    assert joined(cut((Held(1, "u", 0, 1), Held(3, "u", 0, -1)))) is None
+
+
+def test_arcs_with_another_between_them_stay_two():
+    assert joined(cut((Held(1, "u", 0, 1), Held(2, "u", 0, -1), Held(3, "u", 0, 1)))) is None
+
+
+def test_a_gap_of_the_problem_itself_stays():
+    problem = cut((Held(1, "x", 0, 1), Held(3, "x", 0, 1)))
+    own = replace(problem.places[2], label="0.5")
+    assert joined(replace(problem, places=(*problem.places[:2], own, *problem.places[3:]))) is None
+
+
+def test_a_boundary_arc_is_found_exactly():
+    """Bryson, Ho (1975), Applied Optimal Control, section 3.11: below 1/9 the value is 4, the arc from 1/3 to 2/3."""
+    solution = solve(
+        stated(
+            unknowns={"x": {}, "u": {}},
+            dynamics=["x'' = u"],
+            functional={"integrand": "u^2/2"},
+            endpoints=["x(0) = 0", "x'(0) = 1", "x(1) = 0", "x'(1) = -1"],
+            constraints=["x <= 1/9"],
+        )
+    )
+    assert solution.verdict is Verdict.GLOBAL_MINIMUM
+    assert abs(solution.value - 4) <= min(solution.value_error, 1e-9)
+    first, last = solution.switches
+    assert abs(first.place - 1 / 3) < 1e-4
+    assert abs(last.place - 2 / 3) < 1e-4
