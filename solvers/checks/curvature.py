@@ -40,7 +40,7 @@ NAME = "conjugate points"
 MARGIN = 1e-5
 NOTICEABLE = 10.0
 """By how much a negative second variation must exceed the relative error of the curve."""
-DENSE = 1000
+DENSE = 1200
 """Up to so many variables the kernel of the constraints is computed where the penalty leaves doubts."""
 FINE_MARGIN = 1e-7
 """The margin then: only the multipliers' own errors remain."""

@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 
 from solvers.problem import Parameter, Problem
 from solvers.starts.sketch import Bend, Sketch
-from solvers.transcription.evaluation import end_outputs, point_outputs
+from solvers.transcription.evaluation import end_inputs, mapped, point_inputs, point_outputs
 from solvers.transcription.functions import Compiled
 from solvers.transcription.layout import Layout
 from solvers.transcription.limits import constants_of, interval_of, number
@@ -24,7 +24,6 @@ from solvers.transcription.mesh import Mesh
 from solvers.transcription.natural import natural_sizes
 
 Array = NDArray[np.float64]
-Limits = Sequence[tuple[float, float]]
 
 BENDS = (*(Bend(size) for size in (0.1, -0.1, 0.3, -0.3, 1.0, -1.0)), Bend(0.3, 2), Bend(1.0, 2))
 """Bends that are tried."""
@@ -52,27 +51,43 @@ def guesses(compiled: Compiled, mesh: Mesh, where: Layout) -> list[Guess]:
     _size_parameters(compiled, mesh, where, places, parameters)
     _vary_parameters(problem, places, parameters, where)
     sketch = Sketch(compiled, mesh, where, places, parameters)
-    limits = _limits(compiled)
-    found = [_guess(compiled, where, sketch.bent(Bend()), limits)]
+    found = _judged(compiled, where, [sketch.bent(Bend())])
     if found[0].violation > 1e-3:
         sizes = natural_sizes(compiled, mesh, where, found[0].z)
-        found += [replace(_guess(compiled, where, sketch.bent(bend, sizes), limits), bent=True) for bend in BENDS]
+        bent = _judged(compiled, where, [sketch.bent(bend, sizes) for bend in BENDS])
+        found += [replace(guess, bent=True) for guess in bent]
     # A bend must be clearly better than none.
     return sorted(found, key=lambda guess: guess.violation * (1.1 if guess.bent else 1.0))
 
 
-def _guess(compiled: Compiled, where: Layout, z: Array, limits: Limits) -> Guess:
-    first = compiled.point.states + compiled.point.constraints
-    outputs = point_outputs(compiled, where, z)
-    totals = where.measures @ outputs[:, first : first + compiled.point.integrals]
-    z[where.integrals] = np.where(np.isfinite(totals), totals, 0.0)
-    return Guess(z, _violation(compiled, where, z, outputs, limits))
+def _judged(compiled: Compiled, where: Layout, sketches: Sequence[Array]) -> list[Guess]:
+    """Sketches with their integrals and what they violate; all are evaluated at once."""
+    point, constants = compiled.point, constants_of(compiled)
+    first = point.states + point.constraints
+    v, d = (np.vstack(parts) for parts in zip(*(point_inputs(compiled, where, z) for z in sketches), strict=True))
+    outputs = mapped(point.value, v, d).reshape(len(sketches), -1, point.outputs)
+    totals = where.measures @ outputs[:, :, first : first + point.integrals]
+    for z, own in zip(sketches, totals, strict=True):
+        z[where.integrals] = np.where(np.isfinite(own), own, 0.0)
+    y = np.stack([end_inputs(where, z) for z in sketches])
+    ends = mapped(compiled.end.value, y, np.tile(compiled.constants, (len(y), 1)))
+    limits = [interval_of(condition, constants) for condition in (*compiled.pointwise, *compiled.conditions)]
+    violated = np.array([_excess(values, *limit) for values, limit in zip(
+        (*np.moveaxis(outputs[:, :, point.states : first], 2, 0), *ends.T[:-1, :, None]), limits, strict=True)
+    ]).reshape(-1, len(y))  # fmt: skip
+    undefined = np.mean(~np.isfinite(outputs), axis=(1, 2)) + np.mean(~np.isfinite(ends), axis=1)
+    violations = 1e3 * undefined + violated.sum(axis=0)
+    return [Guess(z, float(violation)) for z, violation in zip(sketches, violations, strict=True)]
 
 
-def _limits(compiled: Compiled) -> Limits:
-    """The least and the greatest value of every pointwise constraint, then of every condition."""
-    constants = constants_of(compiled)
-    return [interval_of(condition, constants) for condition in (*compiled.pointwise, *compiled.conditions)]
+def _excess(values: Array, lower: float, upper: float) -> Array:
+    """The mean excess of rows of values beyond limits, relative to the sizes of both; undefined ones do not count."""
+    defined = np.isfinite(values)
+    known = np.where(defined, values, np.clip(0.0, lower, upper))
+    excess = np.maximum(np.maximum(lower - known, known - upper), 0.0).sum(axis=1) / np.maximum(defined.sum(axis=1), 1)
+    size = max((abs(limit) for limit in (lower, upper) if np.isfinite(limit)), default=0.0)
+    sizes = np.maximum(np.abs(np.where(defined, values, 0.0)).max(axis=1), size)
+    return np.asarray(excess / np.where(sizes > 0, sizes, 1.0))
 
 
 WIDE = 20.0
@@ -171,20 +186,3 @@ def _misfit(compiled: Compiled, where: Layout, z: Array) -> float:
     sizes = np.where(sizes > 0, sizes, float(sizes.max(initial=0.0)) or 1.0)
     misfit = float(np.mean(np.abs(rates - slopes) / sizes)) if rates.size else 0.0
     return misfit if np.isfinite(misfit) else np.inf
-
-
-def _violation(compiled: Compiled, where: Layout, z: Array, outputs: Array, limits: Limits) -> float:
-    """How much of the problem a guess violates: undefined values first, then constraints and conditions."""
-    point = compiled.point
-    end = end_outputs(compiled, where, z)
-    undefined = float(np.mean(~np.isfinite(outputs))) + float(np.mean(~np.isfinite(end)))
-    total = 0.0
-    pointwise = outputs[:, point.states : point.states + point.constraints]
-    for values, (lower, upper) in zip((*pointwise.T, *end[:-1, None]), limits, strict=True):
-        finite = values[np.isfinite(values)]
-        if len(finite) == 0:
-            continue
-        excess = float(np.mean(np.maximum(np.maximum(lower - finite, finite - upper), 0.0)))
-        sizes = [abs(limit) for limit in (lower, upper) if np.isfinite(limit)]
-        total += excess / max(float(np.abs(finite).max()), *sizes) if excess else 0.0
-    return 1e3 * undefined + total
