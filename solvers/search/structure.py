@@ -30,6 +30,8 @@ TOUCH = 0.02
 """How short, relative to the whole, a stay of a state on its limit counts as a touch."""
 COLLAPSED = 3e-3
 """Width, relative to the whole, of a stretch that is about to vanish."""
+FREE = 0.9
+"""Share of the points off all limits at which a control counts as free all along."""
 STATE_ON_LIMIT = 1e-4
 """The same for a state, which may come near to its limit without resting on it."""
 
@@ -219,7 +221,7 @@ def with_switches(problem: Problem, found: list[Switch], path: Trajectory, linea
             break
         kept = simpler
     calm = _calm(linear, len(spots) - 1, held)
-    if not kept and not calm:
+    if not kept and not (calm and _free_all_along(path, linear)):
         return None
     places: list[Place] = []
     parameters: list[Parameter] = []
@@ -237,6 +239,11 @@ def with_switches(problem: Problem, found: list[Switch], path: Trajectory, linea
     parameters = [*problem.parameters, *parameters]
     return replace(problem, places=tuple(places), parameters=tuple(parameters), held=held, calm=calm,
                    touches=tuple(touches))  # fmt: skip
+
+
+def _free_all_along(path: Trajectory, linear: list[Quantity]) -> bool:
+    """Whether the controls hardly ever rest on a limit."""
+    return all(np.mean(s.labels == 0) > FREE for s in signals(path) if s.quantity in linear)
 
 
 def _without_collapsed(found: list[Switch], width: float) -> list[Switch]:
