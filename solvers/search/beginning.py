@@ -25,12 +25,16 @@ DOUBTFUL_ITERATIONS = 200
 """Iterations of further tries once one start has led to a conflict."""
 FEW_ITERATIONS = 100
 """Iterations within which a solve from a related trajectory must be through: it starts near its end."""
-ATTEMPTS: tuple[dict[str, Any], ...] = (
-    {},
-    {"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 0.1} | LEAST_SQUARES_MULTIPLIERS,
-    {"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 1e-3, "ipopt.nlp_scaling_method": "gradient-based"},
+NIMBLE_ITERATIONS = 250
+"""Iterations after which an adaptive barrier rather goes round in circles than nears an end."""
+STEADY: dict[str, Any] = {"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 0.1} | LEAST_SQUARES_MULTIPLIERS
+ATTEMPTS: tuple[tuple[int, int, dict[str, Any]], ...] = (
+    (3, 1, {"ipopt.max_iter": NIMBLE_ITERATIONS}),
+    (2, 1, STEADY),
+    (2, 2, {"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 1e-3, "ipopt.nlp_scaling_method": "gradient-based"}),
+    (1, 1, {}),
 )
-"""Settings of the minimiser that are tried in turn on the first mesh."""
+"""What is tried in turn on the first mesh: how many guesses, how many times the least intervals, which settings."""
 
 
 def begin(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Program, Minimum] | None:
@@ -39,10 +43,10 @@ def begin(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Program, Minimum] | N
     stretches = len(pursuit.problem.places) - 1
     ends: list[End] = []
     conflict = False
-    for attempt, options in enumerate(ATTEMPTS):
-        mesh = first_mesh(stretches, FIRST_INTERVALS * (1 if attempt < 2 else 2))
+    for attempt, (most, times, options) in enumerate(ATTEMPTS):
+        mesh = first_mesh(stretches, times * FIRST_INTERVALS)
         where = layout(compiled, mesh)
-        for guess in guesses(compiled, mesh, where)[: 2 if attempt else 3]:
+        for guess in guesses(compiled, mesh, where)[:most]:
             program = make_program(compiled, mesh, where, guess.z)
             pursuit.first = pursuit.first or program
             doubtful = {"ipopt.max_iter": DOUBTFUL_ITERATIONS} if End.INFEASIBLE in ends else {}
@@ -109,7 +113,7 @@ def _after_least_violation(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Prog
         pursuit.end, pursuit.findings = End.INFEASIBLE, least.findings
         pursuit.nearest = curve_of_least_violation(program, least)
         return None
-    minimum = minimise_(program, Start(least.z), ATTEMPTS[1])
+    minimum = minimise_(program, Start(least.z), STEADY)
     if minimum.outcome in SOLVED:
         return program, minimum
     pursuit.end = End.UNBOUNDED if _runs_away(program, minimum) else end_of(minimum)
