@@ -219,7 +219,8 @@ def _script_table(names: list[str]) -> None:
         rows.append(row)
         print(f"{row.name:<8} {1e3 * row.ours:8.0f} {1e3 * row.other:10.0f} {row.ratio:6.2f} "
               f"{1e3 * row.as_exact:12.0f} {row.ours / row.as_exact:6.2f} "
-              f"{row.our_error:10.1e} {row.other_error:10.1e}  {row.note}{'' if row.finished else ' (gave up)'}", flush=True)  # fmt: skip
+              f"{row.our_error:10.1e} {row.other_error:10.1e}  {row.note}"
+              f"{'' if row.finished else ' (gave up)'}", flush=True)  # fmt: skip
     agreed = [row for row in rows if row.finished]
     exact = statistics.geometric_mean(row.ours / row.as_exact for row in rows)
     print(f"geometric mean {mean_ratio(rows):.2f} of {len(rows)}; {mean_ratio(agreed):.2f} of the {len(agreed)} where "
