@@ -274,6 +274,7 @@ class Problem:
     jumps: frozenset[Jump] = frozenset()
     observations: tuple[Observation, ...] = ()
     held: tuple[Held, ...] = ()  # found by the solver, never given by the user
+    implied: tuple[Held, ...] = ()  # the same: states that rest on a limit because of what is held there
     touches: tuple[Touch, ...] = ()  # the same
     calm: tuple[Calm, ...] = ()  # the same
     start: Variation = field(default_factory=Variation)  # the same

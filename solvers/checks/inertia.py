@@ -33,6 +33,8 @@ NOISE = 1e-9
 """Rounding error of the factors that leaves the margin trustworthy; entries of the Hessian are of the order of one."""
 FEW = 400
 """Up to so many variables a full matrix is factorized sooner than a sparse one."""
+TOGETHER = 16
+"""So many columns of the border are solved for at once."""
 SWEEPS = 500
 """Most iterations of the least squares that put a direction onto the constraints."""
 
@@ -176,10 +178,11 @@ def count_negative(
     if solve is None:
         return None
     moved = np.empty_like(side)
-    for column in range(side.shape[1]):  # one by one: all at once could take long beyond the deadline
+    for first in range(0, side.shape[1], TOGETHER):  # not all at once, which could take long beyond the deadline
         if deadline.over:
             raise TimeoutError
-        moved[:, column] = solve(side[:, column])
+        few = slice(first, first + TOGETHER)
+        moved[:, few] = solve(side[:, few])
     rest = corner - side.T @ moved  # Schur complement of the band
     negative += int((np.linalg.eigvalsh((rest + rest.T) / 2) < 0).sum()) - coupling.shape[0]
     if negative <= 0 or shift < 0:  # only a count that stands against the margin needs its direction

@@ -142,7 +142,11 @@ WARM: dict[str, Any] = {
     "ipopt.warm_start_slack_bound_push": 1e-6,
     "ipopt.warm_start_slack_bound_frac": 1e-6,
     "ipopt.warm_start_mult_bound_push": 1e-6,
+    "ipopt.accept_every_trial_step": "yes",
 }
+"""A warm start is near its end, where Newton's own steps are the best ones: a line search would cut them short wherever
+the value hardly depends on the variables (Maratos, 1978; from memory).  Measured on places at which a state leaves its
+limit smoothly: 26 iterations instead of more than 100."""
 
 
 CLOSE: dict[str, Any] = {
@@ -155,6 +159,27 @@ CLOSE: dict[str, Any] = {
     "ipopt.max_iter": 60,
 }
 """Options for a warm start that is nearly the end: the solution for a neighbouring value of a constant."""
+
+
+BARRIER = (1e-9, 1e-5)
+"""The least and the greatest barrier parameter of a warm start."""
+PUSHING = 1e-8
+"""Multipliers, scaled, that count as a push."""
+ROOM = 1e-5
+"""Distance from limits that push, scaled, at which a warm start begins."""
+
+
+def barrier(program: Bounded, start: Start) -> float:
+    """The barrier parameter of a warm start: what keeps the limits that push at a distance of `ROOM`.
+
+    A limit stays as far away as this parameter over its multiplier: from a curved limit that pushes a little at each of
+    many points the curve would first go far away, only to come back.  Where no such limit pushes, many curves may do
+    equally well, and a large parameter keeps to their middle.
+    """
+    assert start.multipliers is not None
+    pushes = np.abs(start.multipliers[program.row_lower < program.row_upper])
+    pushes = pushes[pushes > PUSHING]
+    return float(np.clip(ROOM * np.median(pushes), *BARRIER)) if len(pushes) else BARRIER[1]
 
 
 class Numbers(Protocol):
@@ -291,10 +316,13 @@ def minimise(
 ) -> Minimum:
     """Minimise a program from a start; never raises for a numerical failure."""
     began = time.perf_counter()
+    if np.any(program.lower > program.upper):  # CasADi would refuse it
+        none = np.zeros(len(start.z)), np.zeros(len(program.row_lower))
+        return Minimum(Outcome.INFEASIBLE, start.z, np.inf, *none, 0, 0.0, 0.0, "limits contradict each other")
     settings = dict(OPTIONS)
     warm = start.multipliers is not None
     if warm:
-        settings |= WARM
+        settings |= WARM | {"ipopt.mu_init": barrier(program, start)}
     if len(program.lower) >= LARGE:
         settings |= MINIMUM_DEGREE
     settings |= options or {}

@@ -50,7 +50,7 @@ def begin(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Program, Minimum] | N
             program = make_program(compiled, mesh, where, guess.z)
             pursuit.first = pursuit.first or program
             doubtful = {"ipopt.max_iter": DOUBTFUL_ITERATIONS} if End.INFEASIBLE in ends else {}
-            minimum = minimise_(program, Start(guess.z / program.scale), options | doubtful)
+            minimum = minimise_.patiently(program, Start(guess.z / program.scale), options | doubtful)
             if minimum.outcome is Outcome.FAILED and _outgrown(minimum):
                 z = minimum.z * program.scale
                 program = make_program(compiled, mesh, where, z)

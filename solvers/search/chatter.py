@@ -104,6 +104,7 @@ def one_more(path: Trajectory) -> Problem | None:
         parameters=(*(_roomy(p, places, problem) for p in problem.parameters), parameter),
         held=(*(replace(h, stretch=h.stretch + (h.stretch >= new)) for h in problem.held),
               Held(new, *found.control, side)),
+        implied=tuple(replace(h, stretch=h.stretch + (h.stretch >= new)) for h in problem.implied),
         calm=tuple(replace(c, stretch=c.stretch + (c.stretch >= new)) for c in problem.calm),
     )  # fmt: skip
 

@@ -19,6 +19,10 @@ from solvers.transcription.program import Program
 
 Array = NDArray[np.float64]
 
+UNHURRIED = 120
+"""Iterations after which a search from afar is looked at."""
+NEWTON_STEPS = 60
+"""Iterations within which Newton's own steps have to be through from there."""
 MANY_STATES = 24
 """States at each node beyond which a program is wide."""
 
@@ -48,6 +52,22 @@ class Minimiser:
         if minimum is not None:
             self.pursuit.last = (program, minimum)
         return minimum
+
+    def patiently(self, program: Program, start: Start, options: dict[str, Any] | None = None) -> Minimum:
+        """Minimise from a start that may be far away; where that stalls, try Newton's own steps from there.
+
+        Near its end a line search may cut every step short, as along a curved limit that is followed (Maratos, 1978;
+        from memory): what is not through after `UNHURRIED` iterations is taken for near.  Else the search goes on.
+        """
+        options = options or {}
+        minimum = self(program, start, {"ipopt.max_iter": UNHURRIED} | options)
+        if minimum.outcome is not Outcome.ITERATIONS:
+            return minimum
+        reached = Start(minimum.z, minimum.bound_multipliers, minimum.multipliers)
+        near = self(program, reached, {"ipopt.max_iter": NEWTON_STEPS})
+        if near.outcome is not Outcome.ITERATIONS and near.outcome is not Outcome.FAILED:
+            return near
+        return minimum if "ipopt.max_iter" in options else self(program, start, options)
 
     def relax(self, program: Program, z: Array, **settings: Any) -> LeastViolation:
         """The curve that violates the conditions least."""

@@ -20,6 +20,8 @@ def joined(problem: Problem) -> Problem | None:
                 parameters=tuple(p for p in problem.parameters if p.name not in ends),
                 held=tuple(replace(h, stretch=_moved(h.stretch, stretch)) for h in problem.held
                            if h.stretch != stretch + 1),
+                implied=tuple(replace(h, stretch=_moved(h.stretch, stretch)) for h in problem.implied
+                              if h.stretch not in (stretch, stretch + 1)),
                 calm=tuple(replace(c, stretch=_moved(c.stretch, stretch)) for c in problem.calm
                            if c.stretch != stretch),
             )  # fmt: skip

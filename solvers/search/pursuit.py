@@ -127,7 +127,8 @@ def _next(path: Trajectory, mesh: Mesh, minimise_: Minimiser) -> tuple[Program, 
     elif pursuit.gently:
         del tries[0]
     for start, options in tries:
-        minimum = minimise_(program, start, options)
+        afresh = start is not warm
+        minimum = minimise_.patiently(program, start) if afresh else minimise_(program, start, options)
         if minimum.outcome in SOLVED:
             pursuit.gently = options is gentle
             return program, minimum

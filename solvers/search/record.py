@@ -74,3 +74,8 @@ class Pursuit:
     def shown(self) -> bool:
         """Whether the stated errors allow a verdict: where the value is flat, the curve may be known less exactly."""
         return self.solved and self.value_met and self.curve_error <= float(np.sqrt(self.problem.options.tolerance))
+
+    @property
+    def done(self) -> bool:
+        """Whether no more meshes are wanted: the tolerance is met, or the value stands still and is shown."""
+        return self.end is End.CONVERGED or (self.end is End.SETTLED and self.value_met_before and self.shown)

@@ -11,13 +11,18 @@ from solvers.search.joined import joined
 from solvers.search.pursuit import go_on, pursue
 from solvers.search.record import End, Pursuit
 from solvers.search.structure import (
+    Release,
+    Switch,
     at_the_edge,
-    held_rightly,
     present_switches,
+    released,
+    shrinking,
+    shrunk,
     signals,
     softened,
     switches,
     with_switches,
+    wrongly_held,
 )
 from solvers.solution import Watch
 from solvers.transcription.collocation import Family
@@ -29,6 +34,8 @@ SOFTNESS = (1e-3, 1e-5)
 """Weights of the softened problems that are tried in turn."""
 ROUNDS = 3
 """How often the structure is read again off a sharpened path."""
+SLOW = 0.25
+"""How much of the error one more mesh must leave at the most where the structure is right."""
 MOST_CHATTER = 5
 """So many switches are added where a control chatters: each counts about a thousandth of the one before."""
 AGREEMENT = 1e-2
@@ -43,20 +50,19 @@ def sharpen(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit |
     found = []
     for seen in _calmed(base, watch, deadline):
         sharp = with_structure(base, seen, watch, deadline)
-        if sharp is not None and sharp.end is End.CONVERGED:
-            return sharp
-        if sharp is not None:
-            found.append(sharp)
-    for sharp in sorted(found, key=lambda pursuit: pursuit.value_error)[:1]:
-        for _ in range(0 if _suffices(sharp) else ROUNDS):
+        for _ in range(ROUNDS):
+            if sharp is None or sharp.done or _suffices(sharp):
+                break
             again = with_structure(base, sharp.paths[-1], watch, deadline)
             if again is None or again.value_error > sharp.value_error:
                 break
             sharp = again
-            if sharp.end is End.CONVERGED:
-                break
-        return _with_more_switches(base, sharp, watch, deadline)
-    return None
+        if sharp is not None and sharp.end is End.CONVERGED:
+            return sharp
+        if sharp is not None:
+            found.append(sharp)
+    best = min(found, key=lambda pursuit: (not pursuit.done, pursuit.value_error), default=None)
+    return None if best is None else _with_more_switches(base, best, watch, deadline)
 
 
 def _suffices(sharp: Pursuit) -> bool:
@@ -80,32 +86,65 @@ def _calmed(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Iterator[
 def with_structure(base: Pursuit, path: Trajectory, watch: Watch | None, deadline: Deadline) -> Pursuit | None:
     """Read switches off a path and solve with them; None where there are none or the answer is not believable.
 
-    A switch that ends at the edge of the room it was given is looked at again from there; where a limit that is held
-    would rather be left, an arc that the mesh may have seen as two is tried as one.
+    What turns out to be held wrongly is let go, unless an arc that the mesh may have seen as two does as one.  A switch
+    that ends at the edge of the room it was given is looked at again from there, and left out if it does so again: the
+    arc towards which it runs has no length.  Looked at again is also a structure with which the error hardly falls from
+    one mesh to the next.
     """
     linear = [base.compiled.lowered.controls[index] for index in linear_controls(base.compiled)]
-    changed: Problem | None = None
+    loose: list[Release] = []
+    one: Problem | None = None
+    seen, pursuit, again = path.program.compiled.lowered.problem, None, False
     for _ in range(ROUNDS):
+        found = sorted([*switches(path, linear), *present_switches(path)], key=lambda switch: switch.place)
+        changed = one or with_switches(base.problem, found, path, linear, loose)
+        if again and changed is not None and _alike(changed, seen):
+            found = [switch for switch in found if not _vanishing(switch, shrinking(path))]
+            loose += released(path, shrunk(path))
+            changed = with_switches(base.problem, found, path, linear, loose)
         if changed is None:
-            found = sorted([*switches(path, linear), *present_switches(path)], key=lambda switch: switch.place)
-            changed = with_switches(base.problem, found, path, linear)
-        if changed is None:
-            return None
-        pursuit = pursue(changed, watch, deadline, meshes=2, start=path, mesh=_mesh(changed))
-        if not pursuit.solved:
-            return None
-        path = pursuit.paths[-1]
+            break
+        alike = _alike(changed, seen)
+        if alike and (again or not at_the_edge(path)):
+            break
+        again, one = alike, None
+        now = pursue(changed, watch, deadline, meshes=2, start=path, mesh=_mesh(changed))
+        if not now.solved:
+            break
+        path = now.paths[-1]
+        seen = changed
         if at_the_edge(path):
-            changed = None
             continue
-        if not _agrees(pursuit, base):
-            return None
-        if held_rightly(path):
-            return pursuit if pursuit.end is End.CONVERGED else go_on(pursuit, watch, deadline, 4)
-        changed = joined(changed)
-        if changed is None:
-            return None
-    return None
+        if not _agrees(now, base):
+            break
+        wrong = wrongly_held(path)
+        if wrong:
+            one = joined(changed)
+            if one is None:
+                loose += released(path, wrong)
+            continue
+        pursuit = now
+        if now.end is End.CONVERGED or not _slow(now):
+            break
+    if pursuit is None or pursuit.end is End.CONVERGED:
+        return pursuit
+    return go_on(pursuit, watch, deadline, 4)
+
+
+def _slow(pursuit: Pursuit) -> bool:
+    """Whether the error has hardly fallen on the last mesh, as it does where a switch is still missing."""
+    errors = [step.error or 0.0 for step in pursuit.steps]
+    return len(errors) > 1 and errors[-1] > SLOW * errors[-2]
+
+
+def _vanishing(switch: Switch, stretches: list[tuple[float, float]]) -> bool:
+    """Whether a switch begins one of the stretches, or lies within."""
+    return any(min(stretch) <= switch.place <= max(stretch) and switch.place != stretch[1] for stretch in stretches)
+
+
+def _alike(one: Problem, other: Problem) -> bool:
+    """Whether two structures have the same arcs in the same order."""
+    return (one.held, one.calm, len(one.places)) == (other.held, other.calm, len(other.places))
 
 
 def _with_more_switches(base: Pursuit, sharp: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit:
@@ -133,7 +172,8 @@ def _with_more_switches(base: Pursuit, sharp: Pursuit, watch: Watch | None, dead
 def _mesh(problem: Problem) -> Mesh:
     """Few intervals where everything is held, more where a control is free."""
     pieces: list[Interval] = []
-    held = {h.stretch for h in problem.held}
+    calm = {c.stretch for c in problem.calm}
+    held = {h.stretch for h in problem.held} - calm
     last = len(problem.places) - 2
     for stretch in range(last + 1):
         count, degree = (2, 5) if stretch in held else (4, 6)

@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 
 from solvers.formula.nodes import Name, Node, Number, Power, Product, Sum
 from solvers.problem import Calm, Held, Parameter, Place, Problem, Touch
+from solvers.transcription.functions import Compiled
 from solvers.transcription.limits import quantity_bounds
 from solvers.transcription.lowering import Quantity
 from solvers.transcription.trajectory import Trajectory
@@ -28,6 +29,8 @@ ON_LIMIT = 1e-3
 """How near to a limit, relative to the room it leaves, a control counts as on it."""
 TOUCH = 0.02
 """How short, relative to the whole, a stay of a state on its limit counts as a touch."""
+EDGE = 1e-4
+"""How near to the end of its room, relative to the room, a switch counts as at its edge."""
 COLLAPSED = 3e-3
 """Width, relative to the whole, of a stretch that is about to vanish."""
 FREE = 0.9
@@ -201,10 +204,17 @@ def _merged(found: list[Switch], path: Trajectory) -> list[Switch]:
     return sorted(merged, key=lambda switch: switch.place)
 
 
-def with_switches(problem: Problem, found: list[Switch], path: Trajectory, linear: list[Quantity]) -> Problem | None:
+Release = tuple[Quantity, float, float]
+"""A quantity that is not to be held between two places."""
+
+
+def with_switches(
+    problem: Problem, found: list[Switch], path: Trajectory, linear: list[Quantity], loose: Sequence[Release] = ()
+) -> Problem | None:
     """The problem with its switches as free places, each between its neighbours, and with its bang arcs held.
 
-    `linear` are the controls that act linearly; they are calm where they are free, which may be all along.
+    `linear` are the controls that act linearly; they are calm where they are free, which may be all along.  `loose` is
+    not held again.
 
     A switch on both sides of which the same controls are held on the same limits is none; None where neither a switch
     is left nor a control to be calmed.
@@ -213,14 +223,14 @@ def with_switches(problem: Problem, found: list[Switch], path: Trajectory, linea
     kept = _without_collapsed(found, COLLAPSED * float(np.ptp(path.places)))
     while True:
         spots: list[Spot] = sorted([*own, *((switch.place, switch) for switch in kept)], key=lambda spot: spot[0])
-        held = _held(path, np.array([place for place, _ in spots]))
+        held, implied = _held(path, np.array([place for place, _ in spots]), loose)
         simpler = _without_contradiction(kept, spots, held)
         if simpler is None:
             simpler = _without_needless(kept, spots, held)
         if simpler is None:
             break
         kept = simpler
-    calm = _calm(linear, len(spots) - 1, held)
+    calm = _calm(linear, len(spots) - 1, held, path.program.compiled)
     if not kept and not (calm and _free_all_along(path, linear)):
         return None
     places: list[Place] = []
@@ -237,7 +247,7 @@ def with_switches(problem: Problem, found: list[Switch], path: Trajectory, linea
         else:
             places.append(place)
     parameters = [*problem.parameters, *parameters]
-    return replace(problem, places=tuple(places), parameters=tuple(parameters), held=held, calm=calm,
+    return replace(problem, places=tuple(places), parameters=tuple(parameters), held=held, implied=implied, calm=calm,
                    touches=tuple(touches))  # fmt: skip
 
 
@@ -317,11 +327,24 @@ def present_switches(path: Trajectory) -> list[Switch]:
 
 def at_the_edge(path: Trajectory) -> bool:
     """Whether any switch has run into a neighbour's room."""
-    return any(
-        parameter.name.startswith(SWITCH + " ")
-        and min(value - parameter.lower, parameter.upper - value) < 1e-4 * (parameter.upper - parameter.lower)
-        for parameter, value in zip(path.program.compiled.lowered.problem.parameters, path.parameters, strict=True)
-    )
+    return bool(shrinking(path))
+
+
+def shrinking(path: Trajectory) -> list[tuple[float, float]]:
+    """The stretches towards whose other end a switch has run, as far as it could: from that switch to that end."""
+    problem = path.program.compiled.lowered.problem
+    values = {p.name: (p, float(v)) for p, v in zip(problem.parameters, path.parameters, strict=True)}
+    found = []
+    for index, place in enumerate(problem.places):
+        if not place.label.startswith(SWITCH + " "):
+            continue
+        parameter, at = values[place.label]
+        near = EDGE * (parameter.upper - parameter.lower)
+        if parameter.upper - at < near:
+            found.append((at, float(path.places[index + 1])))
+        elif at - parameter.lower < near:
+            found.append((at, float(path.places[index - 1])))
+    return found
 
 
 def on_limits(held: tuple[Held, ...], stretch: int) -> set[tuple[str, int, int]]:
@@ -329,10 +352,14 @@ def on_limits(held: tuple[Held, ...], stretch: int) -> set[tuple[str, int, int]]
     return {(h.name, h.order, h.side) for h in held if h.stretch == stretch}
 
 
-def _held(path: Trajectory, places: Array) -> tuple[Held, ...]:
-    """What stays on a limit along which stretch; never more than there are controls, controls before states."""
+def _held(path: Trajectory, places: Array, loose: Sequence[Release]) -> tuple[tuple[Held, ...], tuple[Held, ...]]:
+    """What stays on a limit along which stretch, and what rests there besides because of that.
+
+    Never more is held than there are controls, controls before states; states beyond that follow from the dynamics.
+    """
     room = len(path.program.compiled.lowered.controls)
     found: list[Held] = []
+    implied: list[Held] = []
     for stretch, (start, end) in enumerate(pairwise(places)):
         margin = 0.15 * (end - start)
         inside = (path.points > start + margin) & (path.points < end - margin)
@@ -340,17 +367,43 @@ def _held(path: Trajectory, places: Array) -> tuple[Held, ...]:
             Held(stretch, *signal.quantity, side)
             for signal in signals(path)
             for side in (-1, 1)
-            if inside.any() and np.mean(signal.labels[inside] == side) > 0.8
+            if inside.any()
+            and np.mean(signal.labels[inside] == side) > 0.8
+            and not any(signal.quantity == q and low < (start + end) / 2 < high for q, low, high in loose)
         ]
-        found += here[:room] if len({held.name for held in here}) > 1 else here
+        most = room if len({held.name for held in here}) > 1 else len(here)
+        found += here[:most]
+        implied += here[most:]
+    return tuple(found), tuple(implied)
+
+
+def _calm(linear: list[Quantity], stretches: int, held: tuple[Held, ...], compiled: Compiled) -> tuple[Calm, ...]:
+    """The linear controls along the stretches where nothing holds them: they run singular there."""
+    found = []
+    for stretch in range(stretches):
+        taken = {q for h in held if h.stretch == stretch for q in determined_by((h.name, h.order), compiled)}
+        found += [Calm(stretch, *quantity) for quantity in linear if quantity not in taken]
     return tuple(found)
 
 
-def _calm(linear: list[Quantity], stretches: int, held: tuple[Held, ...]) -> tuple[Calm, ...]:
-    """The linear controls along the stretches where nothing is held: they run singular there."""
-    return tuple(
-        Calm(stretch, *quantity) for quantity in linear for stretch in range(stretches) if not on_limits(held, stretch)
-    )
+def determined_by(held: Quantity, compiled: Compiled) -> set[Quantity]:
+    """The controls that are no longer free where a quantity is held: itself, or those that first move a held state.
+
+    A state on a limit has all derivatives zero; the first of them in which controls appear determines these
+    (Bryson, Denham, Dreyfus, 1963, on the order of a constraint on states; from memory).
+    """
+    lowered, n = compiled.lowered, compiled.point.states
+    if held in lowered.controls:
+        return {held}
+    reached = {lowered.states.index(held)}
+    for _ in range(n):
+        columns = {column for row, column in zip(compiled.point.jacobian_rows, compiled.point.jacobian_columns,
+                                                 strict=True) if row in reached}  # fmt: skip
+        controls = {lowered.controls[c - n] for c in columns if n <= c < n + len(lowered.controls)}
+        if controls or columns <= reached:
+            return controls
+        reached = {column for column in columns if column < n}
+    return set()
 
 
 def softened(path: Trajectory, chosen: list[int], softness: float) -> Problem:
@@ -375,9 +428,14 @@ WRONG = 0.2
 
 
 def held_rightly(path: Trajectory) -> bool:
-    """Whether leaving any held limit would make the value worse: the slope of the Lagrangian has the right sign.
+    """Whether leaving any held limit would make the value worse."""
+    return not wrongly_held(path)
 
-    For a control at every point of its arc, but for what discretisation blurs near its ends; for a state, whose
+
+def wrongly_held(path: Trajectory) -> list[Held]:
+    """The held limits that it would be better to leave: the slope of the Lagrangian has the wrong sign.
+
+    For a control at any point of its arc, but for what discretisation blurs near its ends; for a state, whose
     multiplier may be spread in many ways, in the sum.
     """
     program = path.program
@@ -385,6 +443,7 @@ def held_rightly(path: Trajectory) -> bool:
     slopes = -path.bound_multipliers * program.scale / abs(program.value_scale)
     lowered = program.compiled.lowered
     resting = [signal for signal in signals(path) if signal.state]
+    found = []
     for held in problem.held:
         quantity = (held.name, held.order)
         inside = where.stretch == held.stretch
@@ -393,8 +452,39 @@ def held_rightly(path: Trajectory) -> bool:
         if quantity in lowered.controls:
             outward = -held.side * slopes[where.controls[inside, lowered.controls.index(quantity)]]
             outward = outward / where.measures[inside]
-            if outward.min(initial=0.0) < -WRONG * np.abs(outward).max(initial=0.0):
-                return False
-        elif -held.side * slopes[where.inner[inside, lowered.states.index(quantity)]].sum() < 0:
-            return False
-    return True
+            wrong = outward.min(initial=0.0) < -WRONG * np.abs(outward).max(initial=0.0)
+        else:
+            wrong = -held.side * slopes[where.inner[inside, lowered.states.index(quantity)]].sum() < 0
+        if wrong:
+            found.append(held)
+    return found
+
+
+def released(path: Trajectory, wrong: Sequence[Held]) -> list[Release]:
+    """What is to be let go, and between which places: up to the next ones beyond which it is held again.
+
+    A control that runs singular close to its limit looks held here and there, wherever it is looked at.
+    """
+    held = path.program.compiled.lowered.problem.held
+    found = []
+    for one in wrong:
+        first = last = one.stretch
+        others = {h.stretch for h in held if (h.name, h.order) == (one.name, one.order)}
+        while first > 0 and first - 1 not in others:
+            first -= 1
+        while last + 2 < len(path.places) and last + 1 not in others:
+            last += 1
+        found.append(((one.name, one.order), float(path.places[first]), float(path.places[last + 1])))
+    return found
+
+
+def shrunk(path: Trajectory) -> list[Held]:
+    """What is held along stretches that shrink towards nothing beside others where it is free."""
+    held = path.program.compiled.lowered.problem.held
+    found = []
+    for start, end in shrinking(path):
+        at = int(np.argmin(np.abs(path.places - start)))
+        stretch, beside = (at, at - 1) if end > start else (at - 1, at)
+        across = {(h.name, h.order) for h in held if h.stretch == beside}
+        found += [h for h in held if h.stretch == stretch and (h.name, h.order) not in across]
+    return found

@@ -45,7 +45,7 @@ def plainly(form: Problem, constants: Problem) -> Problem:
     """A form that the solver has given switches without them, for the constants of another problem."""
     own = [place for place in form.places if not place.label.startswith(SWITCH + " ")]
     parameters = tuple(p for p in form.parameters if not p.name.startswith(SWITCH + " "))
-    return replace(form, places=tuple(own), parameters=parameters, held=(), calm=(), touches=(),
+    return replace(form, places=tuple(own), parameters=parameters, held=(), implied=(), calm=(), touches=(),
                    constants=constants.constants)  # fmt: skip
 
 

@@ -17,6 +17,7 @@ if TYPE_CHECKING:
     from solvers.transcription.layout import Layout, Rows
 
 Array = NDArray[np.float64]
+Indices = NDArray[np.int64]
 
 
 def number(tree: Node, constants: Mapping[str, float]) -> float:
@@ -63,6 +64,8 @@ def limits(compiled: Compiled, where: Layout, rows: Rows) -> tuple[Array, Array,
     lower[where.controls], upper[where.controls] = control_lower, control_upper
     for held in problem.held:
         _hold(held, compiled, where, lower, upper)
+    for implied in problem.implied:
+        _leave_out(implied, compiled, where, lower, upper)
     for touch in problem.touches:
         node = where.at_place[[place.label for place in problem.places].index(touch.place)]
         states = compiled.lowered.states
@@ -104,11 +107,27 @@ def _hold(held: Held, compiled: Compiled, where: Layout, lower: Array, upper: Ar
         inside = where.controls[where.stretch == held.stretch, lowered.controls.index(quantity)]
         lower[inside] = upper[inside] = side[inside]
         return
-    start, end = where.at_place[held.stretch], where.at_place[held.stretch + 1]
-    k = lowered.states.index(quantity)
-    inside = np.concatenate([where.nodes[start : end + 1, k], where.inner[where.stretch == held.stretch, k]])
+    inside = _along(held, compiled, where)
     lower[inside] = upper[inside] = side[inside]
+    start = where.at_place[held.stretch]
     for index, (name, order) in enumerate(lowered.states):
         if name == held.name and order > held.order:
             at = where.nodes[start, index]
             lower[at] = upper[at] = 0.0
+
+
+def _leave_out(implied: Held, compiled: Compiled, where: Layout, lower: Array, upper: Array) -> None:
+    """Do not state a limit that cannot be crossed: it would leave no room inside, and no multiplier of its own."""
+    inside = _along(implied, compiled, where)
+    inside = inside[lower[inside] < upper[inside]]
+    if implied.side < 0:
+        lower[inside] = -np.inf
+    else:
+        upper[inside] = np.inf
+
+
+def _along(held: Held, compiled: Compiled, where: Layout) -> Indices:
+    """Where the values of a state along a stretch stand in z, both ends included."""
+    k = compiled.lowered.states.index((held.name, held.order))
+    start, end = where.at_place[held.stretch], where.at_place[held.stretch + 1]
+    return np.concatenate([where.nodes[start : end + 1, k], where.inner[where.stretch == held.stretch, k]])

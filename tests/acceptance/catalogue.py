@@ -18,13 +18,8 @@ KNOWN_FAILURES: dict[tuple[str, str], str] = {
 """Promises that are not kept yet: (case, promise) -> reason.  A promise is "value", "error", "verdict" or "figures"."""
 
 HARD: dict[str, str] = {
-    "B26": "singular arc in free time: whether the second variation is decided depends on the time left",
-    "B34": "many switches around a singular arc",
-    "C12": "the limit on curvature binds on arcs of the second derivative, which is free: the time is over first",
-    "C15": "a narrow path over peaks: the time is over before the mesh is fine enough",
-    "C16a": "many short arcs on which limits of controls and speeds bind in turn",
-    "C19": "ten arcs of seven states beside each other: many variables on each mesh",
-    "C16b": "without a cost of control most arcs are singular, between many limits that bind in turn",
+    "C12": "the slope jumps where the outer circle is met: the second derivative is free to be an impulse there",
+    "C15": "the value is right after 10 s, but the curve bends at many places where the path's limit binds or not",
 }
 """Cases that take too long to promise a result on any machine -> why.  They get little time and owe only "honesty"."""
 

@@ -1,12 +1,13 @@
 """The minimiser: outcomes, what a watcher hears and may ask for, warm starts."""
 
 import time
+from dataclasses import replace
 
 import numpy as np
 import pytest
 
 from solvers.deadline import in_seconds
-from solvers.minimise.ipopt import Outcome, Start, minimise
+from solvers.minimise.ipopt import BARRIER, ROOM, Outcome, Start, barrier, minimise
 from solvers.transcription.mesh import uniform
 from tests.unit.solvers.problems import program_of, regulator, shape, start_of, stated
 
@@ -111,3 +112,26 @@ def test_a_start_beyond_the_bounds_is_drawn_inside():
     assert minimum.outcome is Outcome.SOLVED
     assert np.all(minimum.z <= program.upper)
     assert np.all(minimum.z >= program.lower)
+
+
+@pytest.mark.parametrize(
+    "push, parameter",
+    [
+        (0.0, BARRIER[1]),  # nothing pushes: far from all limits
+        (0.1, ROOM * 0.1),
+        (1e-7, BARRIER[0]),
+        (1e6, BARRIER[1]),
+    ],
+)
+def test_a_warm_start_begins_as_near_to_limits_as_they_push(push, parameter):
+    """Where a limit at distance d has the multiplier m, the barrier parameter is m d."""
+    program = program_of(stated(constraints=["x^2 + u^2 <= 4"]), MESH)
+    unequal = program.row_lower < program.row_upper
+    start = Start(np.zeros(len(program.lower)), np.zeros(len(program.lower)), np.where(unequal, push, 1.0))
+    assert barrier(program, start) == pytest.approx(parameter)
+
+
+def test_limits_that_contradict_each_other_leave_nothing_to_look_for():
+    program = program_of(regulator(), MESH)
+    crossed = replace(program, lower=program.lower + 1, upper=np.minimum(program.upper, program.lower))
+    assert minimise(crossed, Start(np.zeros(len(program.lower)))).outcome is Outcome.INFEASIBLE

@@ -48,6 +48,48 @@ def test_switches_and_value_are_those_of_the_closed_form(members, value, places,
     assert abs(found.paths[-1].value - value) <= found.value_error
 
 
+def test_a_tank_that_stays_empty_leaves_the_minimiser_room():
+    """A rocket that coasts with nothing left to burn: its least mass has no inner side on that arc.
+
+    Dolan, More, Munson (2004), ANL/MCS-TM-273, problem 10; more digits by integrating the arcs, as in the catalogue.
+    """
+    rocket = stated(
+        independent={"name": "t", "from": 0, "to": "T"},
+        parameters={"T": {"within": [0.01, 1]}},
+        unknowns={"h": {}, "v": {}, "m": {"within": [0.6, 1]}, "F": {"within": [0, 3.5]}},
+        dynamics=["h' = v", "v' = (F - 310*v^2*exp(-500*(h - 1)))/m - 1/h^2", "m' = -2*F"],
+        functional={"seek": "maximum", "endpoint": "h(T)"},
+        endpoints=["h(0) = 1", "v(0) = 0", "m(0) = 1", "m(T) = 0.6"],
+    )
+    found = sharpened(rocket)
+    assert found.done
+    assert found.paths[-1].value == pytest.approx(1.01283691831751, abs=1e-11)
+    assert [switch.place for switch in present_switches(found.paths[-1])] == pytest.approx(
+        [0.0235096840414980, 0.0726707434414047], abs=1e-6
+    )
+
+
+def test_a_singular_control_that_comes_near_its_limit_is_not_held_there():
+    """After the second switch the control runs singular to the end, and nearly vanishes on the way.
+
+    Sager (2005), Numerical methods for mixed-integer optimal control problems: 1.34408 (from memory); more digits by
+    collocation in three phases, as in the catalogue.
+    """
+    fishing = stated(
+        independent={"name": "t", "from": 0, "to": 12},
+        unknowns={"x1": {}, "x2": {}, "w": {"within": [0, 1]}},
+        dynamics=["x1' = x1 - x1*x2 - 0.4*x1*w", "x2' = -x2 + x1*x2 - 0.2*x2*w"],
+        functional={"integrand": "(x1 - 1)^2 + (x2 - 1)^2"},
+        endpoints=["x1(0) = 0.5", "x2(0) = 0.7"],
+    )
+    found = sharpened(fishing)
+    assert found.done
+    assert found.paths[-1].value == pytest.approx(1.3440812, abs=1e-7)
+    held = found.paths[-1].program.compiled.lowered.problem.held
+    assert [(h.stretch, h.side) for h in held] == [(0, -1), (1, 1)]
+    assert [switch.place for switch in present_switches(found.paths[-1])] == pytest.approx([2.4367, 3.942], abs=1e-3)
+
+
 def test_the_singular_arc_is_smooth():
     """u = 0.2271420827084978 all along (catalogue B25)."""
     path = sharpened(stated(**CATALYST)).paths[-1]

@@ -6,20 +6,29 @@ import numpy as np
 import pytest
 
 from solvers.formula.evaluate import REAL, evaluate
+from solvers.formula.nodes import Number
+from solvers.minimise.ipopt import Minimum, Outcome
+from solvers.problem import Place
 from solvers.search.structure import (
     MOST_SWITCHES,
     SWITCH,
     Switch,
+    at_the_edge,
+    determined_by,
     present_switches,
+    released,
+    shrinking,
     signals,
     softened,
     switches,
     with_switches,
+    wrongly_held,
 )
 from solvers.solution import Verdict
 from solvers.solve import solve
 from solvers.transcription.mesh import uniform
-from tests.unit.solvers.problems import path_along, program_of, shape, solved_on, stated
+from solvers.transcription.trajectory import trajectory
+from tests.unit.solvers.problems import compiled, path_along, program_of, shape, solved_on, start_of, stated
 
 TENTHS = uniform(1, 10, 4)
 LINEAR = [("u", 0)]
@@ -99,6 +108,60 @@ def test_singular_arcs_are_calm_and_held_arcs_are_not():
     assert [h.stretch for h in changed.held] == [0, 2]
 
 
+TWO = {
+    "unknowns": {"x": {}, "y": {}, "u": {"within": [-1, 1]}, "w": {"within": [-1, 1]}},
+    "dynamics": ["x'' = u", "y' = x + w"],
+    "endpoints": ["x(0) = 0"],
+    "constraints": ["x' <= 1/2", "y <= 1"],
+    "functional": {"integrand": "x^2 + y^2"},
+}
+
+
+@pytest.mark.parametrize(
+    "held, controls",
+    [
+        (("u", 0), {("u", 0)}),
+        (("x", 1), {("u", 0)}),  # its first derivative
+        (("x", 0), {("u", 0)}),  # its second one
+        (("y", 0), {("w", 0)}),  # appears together with x, whose own rates are not asked for then
+    ],
+)
+def test_a_held_state_determines_the_controls_that_first_move_it(held, controls):
+    assert determined_by(held, compiled(stated(**TWO))) == controls
+
+
+def test_a_state_that_no_control_moves_determines_none():
+    still = stated(**TWO | {"dynamics": ["x'' = u", "y' = -y"], "unknowns": {"x": {}, "y": {}, "u": {}}})
+    assert determined_by(("y", 0), compiled(still)) == set()
+
+
+def test_a_control_runs_singular_beside_another_that_is_held():
+    """A speed on its limit determines u; w is as free there as where nothing is held."""
+    problem = stated(**TWO)
+    program = program_of(problem, TENTHS)
+    where = program.layout
+    z = start_of(problem, TENTHS)
+    z[where.inner[where.fractions < 0.5, 1]] = 0.5
+    z[where.controls[:, 1]] = 0.25
+    still = np.zeros(where.size)
+    path = trajectory(program, Minimum(Outcome.SOLVED, z / program.scale, 0, still, np.zeros(program.rows.count),
+                                       0, 0, 0, ""))  # fmt: skip
+    changed = with_switches(problem, [Switch(0.5, 0.5, 0.5)], path, [("u", 0), ("w", 0)])
+    assert [(h.stretch, h.name, h.order) for h in changed.held] == [(0, "x", 1)]
+    assert [(c.stretch, c.name) for c in changed.calm] == [(0, "w"), (1, "u"), (1, "w")]
+
+
+def test_a_state_that_rests_because_a_control_does_is_implied():
+    """An empty tank: with no flow left it stays empty, and there is but one control to hold."""
+    tank = stated(unknowns={"x": {"within": [0, 1]}, "u": {"within": [0, 2]}}, dynamics=["x' = -u"],
+                  endpoints=["x(0) = 1"])  # fmt: skip
+    path = path_along(TENTHS, lambda t: np.maximum(1 - 2 * t, 0), lambda t: np.where(t < 0.5, 2.0, 0.0), tank)
+    changed = with_switches(tank, switches(path, LINEAR), path, LINEAR)
+    assert [(h.stretch, h.name, h.side) for h in changed.held] == [(0, "u", 1), (1, "u", -1)]
+    assert [(h.stretch, h.name, h.side) for h in changed.implied] == [(1, "x", -1)]
+    assert changed.calm == ()
+
+
 def test_switches_that_are_places_already_are_seen_as_such():
     path = path_of(lambda t: np.select([t < 0.2, t < 0.7], [1.0, -1.0], 1.0))
     assert present_switches(path) == []
@@ -135,3 +198,44 @@ def test_a_control_that_does_not_act_linearly_passes_between_its_limits():
     steep = path_of(lambda t: np.clip((t - 0.45) / 0.04, -1.0, 1.0))
     assert len(switches(steep, LINEAR)) == 1
     assert len(switches(steep, [])) == 2
+
+
+def test_what_is_let_go_is_not_held_again():
+    path = path_of(lambda t: np.select([t < 0.2, t < 0.7], [1.0, 0.3], -1.0))
+    changed = with_switches(bang(), switches(path, LINEAR), path, LINEAR, [(("u", 0), 0.6, 1.0)])
+    assert [h.stretch for h in changed.held] == [0]
+    assert len(changed.parameters) == 1
+    assert [c.stretch for c in changed.calm] == [1]
+
+
+def wrongly():
+    """A path with u = 1 held from 1/2 on, although the value falls with x(1)."""
+    path = path_of(lambda t: np.where(t < 0.5, 0.3, 1.0))
+    changed = with_switches(bang(), switches(path, LINEAR), path, LINEAR)
+    problem = replace(changed, places=(changed.places[0], Place(Number(0.5, ""), changed.places[1].label),
+                                       changed.places[2]), calm=())  # fmt: skip
+    return solved_on(problem, uniform(2, 3, 3))
+
+
+def test_a_limit_that_it_would_be_better_to_leave_is_let_go_up_to_where_it_is_held_again():
+    path = wrongly()
+    assert [(h.stretch, h.name) for h in wrongly_held(path)] == [(1, "u")]
+    assert released(path, wrongly_held(path)) == [(("u", 0), 0.0, 1.0)]
+
+
+def test_a_switch_at_the_edge_of_its_room_shrinks_what_lies_beyond():
+    path = path_of(lambda t: np.select([t < 0.2, t < 0.7], [1.0, -1.0], 1.0))
+    changed = with_switches(bang(), switches(path, LINEAR), path, LINEAR)
+    solved = solved_on(replace(changed, held=()), uniform(3, 3, 3))
+    first, second = solved.program.compiled.lowered.problem.parameters
+    at = {
+        "low": [first.lower, second.guess],
+        "high": [first.guess, second.upper],
+        "inside": [first.guess, second.guess],
+    }
+    ends = {"low": (first.lower, 0.0), "high": (second.upper, 1.0)}
+    for name, values in at.items():
+        places = np.array([0.0, *values, 1.0])
+        there = replace(solved, parameters=np.array(values), places=places)
+        assert shrinking(there) == ([ends[name]] if name in ends else [])
+        assert at_the_edge(there) == (name in ends)

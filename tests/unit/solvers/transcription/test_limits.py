@@ -72,6 +72,20 @@ def test_a_held_control_is_fixed_along_its_stretch_only():
     np.testing.assert_array_equal(upper[own], lower[own])
 
 
+def test_a_limit_that_follows_from_what_is_held_is_not_stated():
+    """Beyond 1/2 nothing flows, so x stays where it is: its limit there has no multiplier of its own."""
+    members = {"unknowns": {"x": {"within": [0, 3]}, "u": {"within": [0, 2]}}, "dynamics": ["x' = -u"]}
+    problem = stated(**members, endpoints=["x(0) = 1", "x(1/2) = 0", "x(1) <= 1"])
+    problem = replace(problem, held=(Held(1, "u", 0, -1),), implied=(Held(1, "x", 0, -1),))
+    where, lower, upper, *_ = bounds_of(problem)
+    node = where.at_place[1]
+    beyond = np.concatenate([where.nodes[node + 1 :, 0], where.inner[where.stretch == 1, 0]])
+    assert np.all(lower[beyond] == -INFINITE)
+    assert (upper[where.nodes[-1, 0]], upper[where.nodes[-2, 0]]) == (1, 3)
+    assert (lower[where.nodes[node, 0]], upper[where.nodes[node, 0]]) == (0, 0)
+    assert np.all(lower[where.inner[where.stretch == 0, 0][:-1]] == 0)
+
+
 def test_limits_are_formulas_of_constants():
     problem = stated(constants={"a": 3}, constraints=["x + u <= 2*a - 1"])
     assert interval_of(problem.constraints[0], {"a": 3.0}) == (-INFINITE, 5)
