@@ -52,11 +52,11 @@ def drawn(name: str, result: Mapping[str, Any]) -> list[list[list[float]]]:
 
 
 def _line(trajectory: Trajectory, unknown: str) -> list[list[float]]:
-    """Points of an unknown over its first arc."""
+    """Points of an unknown over all arcs."""
     import numpy as np
 
     places = np.linspace(trajectory.start, trajectory.end, POINTS)
-    values = trajectory.arcs[0].evaluate(unknown, 0, places)
+    values = np.concatenate([arc.evaluate(unknown, 0, own) for arc, own in trajectory.by_arc(places)])
     return [[_short(x), _short(y)] for x, y in zip(places, values, strict=True)]
 
 
