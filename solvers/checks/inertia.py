@@ -13,7 +13,7 @@ import numpy as np
 import scipy.sparse as sp
 from numpy.typing import NDArray
 from scipy.linalg import eigh, qr
-from scipy.sparse.linalg import ArpackError, LinearOperator, eigsh, lsqr, splu
+from scipy.sparse.linalg import ArpackError, LinearOperator, eigsh, splu
 
 from solvers.checks.sampling import Sampler
 from solvers.checks.variation import second_variation
@@ -35,8 +35,12 @@ FEW = 400
 """Up to so many variables a full matrix is factorized sooner than a sparse one."""
 TOGETHER = 16
 """So many columns of the border are solved for at once."""
-SWEEPS = 500
-"""Most iterations of the least squares that put a direction onto the constraints."""
+SWEEPS = 4
+"""How often a direction is put onto the constraints: each time leaves a small share of what it was off."""
+REPEATED = 1e-10
+"""What lets constraints that repeat others pass when a direction is put onto them."""
+OFF = 1e-10
+"""How far off them, relative to its length, a direction may stay."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -262,11 +266,22 @@ def least_quotient(second: Second, free: Flags, rows: Flags) -> float:
 
 
 def proved(second: Second, free: Flags, rows: Flags, direction: Array) -> float:
-    """The second variation of a direction put onto the constraints, relative to its mean square."""
+    """The second variation of a direction put onto the constraints, relative to its mean square.
+
+    Zero where it cannot be put there: a direction that breaks them shows nothing.
+    """
     columns = np.concatenate([np.flatnonzero(free & ~second.border), np.flatnonzero(free & second.border)])
     jacobian = normal(second.jacobian[np.flatnonzero(rows)][:, columns])
-    for _ in range(2):
-        direction = direction - lsqr(jacobian, jacobian @ direction, atol=1e-14, btol=1e-14, iter_lim=SWEEPS)[0]
+    size, count = jacobian.shape[1], jacobian.shape[0]
+    system = sp.bmat([[sp.eye(size), jacobian.T], [jacobian, -REPEATED * sp.eye(count)]], format="csc")
+    try:
+        solve = splu(system).solve
+    except RuntimeError:
+        return 0.0
+    for _ in range(SWEEPS):
+        direction = direction - solve(np.concatenate([np.zeros(size), jacobian @ direction]))[:size]
+    if not np.linalg.norm(jacobian @ direction) <= OFF * np.linalg.norm(direction):
+        return 0.0
     bend = float(direction @ (second.hessian[columns][:, columns] @ direction))
     size = float(direction @ (second.metric[columns][:, columns] @ direction))
     return bend / size if size > 0 else 0.0

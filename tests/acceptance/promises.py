@@ -6,16 +6,17 @@ from collections.abc import Callable
 
 from solvers.solution import Verdict
 from tests.acceptance.catalogue import HARD
-from tests.acceptance.records import Case
+from tests.acceptance.records import Case, Sort
 from tests.acceptance.solving import Outcome
 
 
 def value(case: Case, outcome: Outcome) -> str:
     """The published value is reached; where no curve attains it, nothing better than the infimum is claimed."""
     if not case.sort.attained:
-        if case.value is None or outcome.value is None or outcome.value >= case.value - case.allowed:
+        if case.value is None or outcome.value is None:
             return ""
-        return f"{outcome.value!r} is below the infimum {case.value!r}"
+        excess = outcome.value - case.value if case.sort is Sort.SUPREMUM else case.value - outcome.value
+        return f"{outcome.value!r} is beyond the limit {case.value!r}" if excess > case.allowed else ""
     if outcome.value is None:
         return f"no value: {outcome.trouble}"
     difference = abs(outcome.value - case.value)

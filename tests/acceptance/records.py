@@ -49,13 +49,13 @@ class Sort(Enum):
     SOLUTION = frozenset({Verdict.STATIONARY, Verdict.GLOBAL_MINIMUM, Verdict.LOCAL_MINIMUM})  # nothing to choose
     UNBOUNDED = frozenset({Verdict.NO_OPTIMUM, Verdict.NOT_A_MINIMUM})
     NOT_ATTAINED = frozenset({Verdict.NO_OPTIMUM, Verdict.NOT_A_MINIMUM, Verdict.NOT_VERIFIED, Verdict.BEST_FOUND})
-
+    SUPREMUM = frozenset({Verdict.NO_OPTIMUM, Verdict.NOT_A_MAXIMUM, Verdict.NOT_VERIFIED, Verdict.BEST_FOUND})
     GAP = frozenset({Verdict.NO_OPTIMUM, Verdict.NOT_VERIFIED})  # curves of bounded slope stay away from the infimum
 
     @property
     def attained(self) -> bool:
         """True where some curve of bounded slope comes as near to the published value as one likes, and one has it."""
-        return self not in (Sort.UNBOUNDED, Sort.NOT_ATTAINED, Sort.GAP)
+        return self not in (Sort.UNBOUNDED, Sort.NOT_ATTAINED, Sort.SUPREMUM, Sort.GAP)
 
 
 @dataclass(frozen=True, slots=True)
@@ -73,7 +73,8 @@ class Case:
     """One problem document with its published value, in the document's units.
 
     `tolerance` is relative, absolute where the value is 0.  `known_to` is the absolute uncertainty of the published
-    value itself (0: closed form).  Where no curve attains it, the value is the infimum, or None where there is none.
+    value itself (0: closed form).  Where no curve attains it, the value is the infimum or supremum, or None where there
+    is none.
     """
 
     id: str

@@ -48,8 +48,9 @@ CASES = (
         figures=(at("u", 0.5, 0.5967472117, 1e-6), at("u'", 0.5, 1.4343632844, 1e-5), at("u''", 0, 10.0367718, 1e-4)),
     ),
     Case(
-        "C12", MAX, CAM, 1e-5,
-        "closed form: tangent of the start circle, steepest rise, outer circle; " +
+        "C12", Sort.SUPREMUM, CAM, 1e-5,
+        "closed form: tangent of the start circle, steepest rise, outer circle, which it meets with a corner (r'' " +
+        "has no least value), so no curve of the class attains it; " +
         REPORT + ", problem 3, has the same problem on grids: 4.2743 at 800 intervals (from memory)",
         ("state constraint",), known_to=1e-12,
     ),

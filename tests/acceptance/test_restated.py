@@ -30,6 +30,8 @@ UNFIT = {
     ("C05", "sign"): "squares of misfits are only ever minimised",
     ("C06", "sign"): "squares of misfits are only ever minimised",
     ("C13", "direction"): "a flight of many extremals: to which one the minimiser comes depends on the points' side",
+    ("C16b", "origin"): "many singular arcs: rounding tells how far the second variation is decided",
+    ("C16b", "direction"): "many singular arcs: whether all switches are found depends on the points' side",
 }
 """Changes that do not fit a document, and why."""
 
