@@ -1,4 +1,4 @@
-"""An arc on a limit that a mesh has seen as two, with a gap between them, as one."""
+"""An arc on a limit that a mesh has seen as two, with a gap between them, or as an arc and a touch beside it."""
 
 from __future__ import annotations
 
@@ -9,25 +9,35 @@ from solvers.search.structure import SWITCH, on_limits
 
 
 def joined(problem: Problem) -> Problem | None:
-    """The problem without its first two switches between which a limit is left only to come back to it, if any."""
-    for stretch in range(1, len(problem.places) - 2):
-        before, here, after = (on_limits(problem.held, k) for k in (stretch - 1, stretch, stretch + 1))
-        ends = [place.label for place in problem.places[stretch : stretch + 2]]
-        if before and before == after and not here and all(label.startswith(SWITCH + " ") for label in ends):
-            return replace(
-                problem,
-                places=(*problem.places[:stretch], *problem.places[stretch + 2 :]),
-                parameters=tuple(p for p in problem.parameters if p.name not in ends),
-                held=tuple(replace(h, stretch=_moved(h.stretch, stretch)) for h in problem.held
-                           if h.stretch != stretch + 1),
-                implied=tuple(replace(h, stretch=_moved(h.stretch, stretch)) for h in problem.implied
-                              if h.stretch not in (stretch, stretch + 1)),
-                calm=tuple(replace(c, stretch=_moved(c.stretch, stretch)) for c in problem.calm
-                           if c.stretch != stretch),
-            )  # fmt: skip
+    """The problem without its first gap in which a limit is left only to come back to it, if there is one."""
+    touched = {touch.place: (touch.name, touch.order, touch.side) for touch in problem.touches}
+    labels = [place.label for place in problem.places]
+    for gap in range(1, len(labels) - 2):
+        before, here, after = (on_limits(problem.held, k) for k in (gap - 1, gap, gap + 1))
+        start, end = labels[gap], labels[gap + 1]
+        if here or not (start.startswith(SWITCH + " ") and end.startswith(SWITCH + " ")):
+            continue
+        if before and before == after:
+            return _without(problem, gap, {start, end})
+        if touched.get(end) in before and start not in touched:
+            return _without(problem, gap, {start}, end)
+        if touched.get(start) in after and end not in touched:
+            return _without(problem, gap, {end}, start)
     return None
 
 
-def _moved(stretch: int, gap: int) -> int:
-    """The number of a stretch once the gap and the one behind it are gone."""
-    return stretch if stretch < gap else stretch - 2
+def _without(problem: Problem, gap: int, gone: set[str], untouched: str = "") -> Problem:
+    """The problem without some of the places around a gap; what is held beside it is held there too."""
+
+    def moved(stretch: int) -> int:
+        return stretch if stretch < gap else max(stretch - len(gone), gap - 1)
+
+    held = {replace(h, stretch=moved(h.stretch)): None for h in problem.held}  # both arcs become the same
+    return replace(
+        problem,
+        places=tuple(place for place in problem.places if place.label not in gone),
+        parameters=tuple(p for p in problem.parameters if p.name not in gone),
+        held=tuple(held),
+        calm=tuple(replace(c, stretch=moved(c.stretch)) for c in problem.calm if c.stretch != gap),
+        touches=tuple(touch for touch in problem.touches if touch.place != untouched),
+    )

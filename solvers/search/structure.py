@@ -311,8 +311,9 @@ def _own_places(problem: Problem, path: Trajectory) -> list[Spot]:
 
 
 def present_switches(path: Trajectory) -> list[Switch]:
-    """The switches that are places of a path already."""
-    problem = path.program.compiled.lowered.problem
+    """The switches that are places of a path already, with what is held otherwise on both sides or jumps there."""
+    problem, where = path.program.compiled.lowered.problem, path.program.layout
+    labelled = [(signal.quantity[0], signal.labels) for signal in signals(path) if not signal.state]
     touches = {touch.place: ((touch.name, touch.order), touch.side) for touch in problem.touches}
     found = []
     for index, place in enumerate(problem.places):
@@ -321,6 +322,8 @@ def present_switches(path: Trajectory) -> list[Switch]:
         at, touching = float(path.places[index]), touches.get(place.label)
         changed = on_limits(problem.held, index - 1) ^ on_limits(problem.held, index)
         names = {name for name, _, _ in changed} | ({touching[0][0]} if touching else set())
+        after = where.first[where.at_place[index]]
+        names |= {name for name, labels in labelled if labels[after - 1] * labels[after] == -1}
         found.append(Switch(at, at, at, touching, frozenset(names)))
     return found
 

@@ -2,8 +2,10 @@
 
 from dataclasses import replace
 
+import pytest
+
 from solvers.formula.nodes import Name
-from solvers.problem import Calm, Held, Parameter, Place
+from solvers.problem import Calm, Held, Parameter, Place, Touch
 from solvers.search.joined import joined
 from solvers.solution import Verdict
 from solvers.solve import solve
@@ -29,6 +31,22 @@ def test_two_arcs_on_one_limit_become_one():
     assert [p.name for p in whole.parameters] == ["switch 1", "switch 4"]
     assert whole.held == (Held(1, "x", 0, 1),)
     assert whole.calm == (Calm(0, "u", 0), Calm(2, "u", 0))
+
+
+@pytest.mark.parametrize(
+    "held, touch, places, stretches",
+    [(Held(1, "x", 0, 1), "switch 3", ["switch 1", "switch 3", "switch 4"], [1]),
+     (Held(2, "x", 0, 1), "switch 1", ["switch 1", "switch 3", "switch 4"], [1])],
+)  # fmt: skip
+def test_an_arc_and_a_touch_beside_it_become_one(held, touch, places, stretches):
+    whole = joined(replace(cut((held,)), touches=(Touch(touch, "x", 0, 1),)))
+    assert [place.label for place in whole.places] == ["0", *places, "1"]
+    assert [h.stretch for h in whole.held] == stretches
+    assert whole.touches == ()
+
+
+def test_an_arc_and_a_touch_of_the_other_limit_stay_two():
+    assert joined(replace(cut((Held(1, "x", 0, 1),)), touches=(Touch("switch 3", "x", 0, -1),))) is None
 
 
 def test_arcs_on_different_limits_stay_two():
