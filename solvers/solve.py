@@ -37,11 +37,13 @@ from solvers.problem import Continuation, Problem, Seek
 from solvers.search.attempt import first_mesh
 from solvers.search.chatter import chatter
 from solvers.search.escape import escapes
+from solvers.search.holding import held_rightly
 from solvers.search.irreducible import name_conflicts
 from solvers.search.pursuit import go_on, pursue
 from solvers.search.record import End, Pursuit
 from solvers.search.sharpen import sharpen
-from solvers.search.structure import at_the_edge, held_rightly, jumps_at_breaks, present_switches
+from solvers.search.signals import jumps_at_breaks
+from solvers.search.structure import at_the_edge, present_switches
 from solvers.solution import (
     BranchPoint,
     Change,

@@ -18,7 +18,7 @@ from numpy.typing import NDArray
 
 from solvers.checks.sampling import Sampler
 from solvers.forms.slack import rounded_functions
-from solvers.search.structure import SWITCH
+from solvers.search.signals import SWITCH
 from solvers.solution import Check, Status
 from solvers.transcription.evaluation import mapped
 

@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 
 from solvers.checks.sampling import Sampler
 from solvers.checks.stationarity import complementarity
-from solvers.search.structure import SWITCH
+from solvers.search.signals import SWITCH
 from solvers.solution import Check, Status
 from solvers.transcription.evaluation import mapped
 from solvers.transcription.limits import constants_of, interval_of

@@ -18,7 +18,7 @@ from scipy.sparse.linalg import ArpackError, LinearOperator, eigsh, splu
 from solvers.checks.sampling import Sampler
 from solvers.checks.variation import second_variation
 from solvers.deadline import FOREVER, Deadline
-from solvers.search.structure import SWITCH
+from solvers.search.signals import SWITCH
 
 Array = NDArray[np.float64]
 Flags = NDArray[np.bool_]

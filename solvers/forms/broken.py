@@ -24,7 +24,7 @@ from solvers.formula.nodes import Name
 from solvers.problem import Parameter, Place, Problem, Seek
 from solvers.search.pursuit import go_on, pursue
 from solvers.search.record import End, Pursuit
-from solvers.search.structure import SWITCH
+from solvers.search.signals import SWITCH
 from solvers.solution import Status, Watch
 from solvers.transcription.evaluation import mapped
 from solvers.transcription.trajectory import Trajectory

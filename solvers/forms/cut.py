@@ -18,7 +18,7 @@ from solvers.forms.arc_guess import with_sketches
 from solvers.forms.beside import Beside, side_by_side
 from solvers.formula.nodes import Name
 from solvers.problem import Arc, Held, Parameter, Place, Problem, Unknown
-from solvers.search.structure import MOST_SWITCHES, ON_LIMIT, SWITCH
+from solvers.search.signals import MOST_SWITCHES, ON_LIMIT, SWITCH
 from solvers.solution import ArcCurve, Solution, SwitchPlace
 from solvers.transcription.limits import interval_of
 from solvers.transcription.lowering import Quantity, lower, primed, simple_bound

@@ -12,7 +12,7 @@ from solvers.checks import free_ends
 from solvers.curve import Curve
 from solvers.forms.arcs_in_t import OnCommon
 from solvers.forms.beside import Beside, Piece
-from solvers.search.structure import SWITCH
+from solvers.search.signals import SWITCH
 from solvers.solution import (
     ArcCurve,
     Change,

@@ -18,7 +18,7 @@ from numpy.typing import NDArray
 
 from solvers.formula.nodes import Name
 from solvers.problem import Held, Parameter, Place, Problem
-from solvers.search.structure import SWITCH
+from solvers.search.signals import SWITCH
 from solvers.transcription.lowering import Quantity
 from solvers.transcription.trajectory import Trajectory
 

@@ -5,7 +5,8 @@ from __future__ import annotations
 from dataclasses import replace
 
 from solvers.problem import Problem
-from solvers.search.structure import SWITCH, on_limits
+from solvers.search.signals import SWITCH
+from solvers.search.structure import on_limits
 
 
 def joined(problem: Problem) -> Problem | None:

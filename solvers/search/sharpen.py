@@ -7,23 +7,12 @@ from collections.abc import Iterator
 from solvers.deadline import Deadline
 from solvers.problem import Problem
 from solvers.search.chatter import one_more
+from solvers.search.holding import released, shrunk, wrongly_held
 from solvers.search.joined import joined
 from solvers.search.pursuit import go_on, pursue
 from solvers.search.record import End, Pursuit
-from solvers.search.structure import (
-    Release,
-    Switch,
-    at_the_edge,
-    present_switches,
-    released,
-    shrinking,
-    shrunk,
-    signals,
-    softened,
-    switches,
-    with_switches,
-    wrongly_held,
-)
+from solvers.search.signals import Switch, signals, switches
+from solvers.search.structure import Release, at_the_edge, present_switches, shrinking, softened, with_switches
 from solvers.solution import Watch
 from solvers.transcription.collocation import Family
 from solvers.transcription.functions import linear_controls

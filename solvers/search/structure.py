@@ -8,7 +8,7 @@ where it happens the curve has a corner, and no polynomial across it converges. 
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import replace
 from itertools import pairwise
 
 import numpy as np
@@ -16,193 +16,20 @@ from numpy.typing import NDArray
 
 from solvers.formula.nodes import Name, Node, Number, Power, Product, Sum
 from solvers.problem import Calm, Held, Parameter, Place, Problem, Touch
+from solvers.search.signals import SWITCH, Switch, signals
 from solvers.transcription.functions import Compiled
-from solvers.transcription.limits import quantity_bounds
 from solvers.transcription.lowering import Quantity
 from solvers.transcription.trajectory import Trajectory
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]
 
-MOST_SWITCHES = 16
-ON_LIMIT = 1e-3
-"""How near to a limit, relative to the room it leaves, a control counts as on it."""
-TOUCH = 0.02
-"""How short, relative to the whole, a stay of a state on its limit counts as a touch."""
 EDGE = 1e-4
 """How near to the end of its room, relative to the room, a switch counts as at its edge."""
 COLLAPSED = 3e-3
 """Width, relative to the whole, of a stretch that is about to vanish."""
 FREE = 0.9
 """Share of the points off all limits at which a control counts as free all along."""
-STATE_ON_LIMIT = 1e-4
-"""The same for a state, which may come near to its limit without resting on it."""
-
-
-@dataclass(frozen=True, slots=True)
-class Switch:
-    """A switch at `place`, which lies between `low` and `high` for certain; or a touch of the `touching` state."""
-
-    place: float
-    low: float
-    high: float
-    touching: tuple[Quantity, int] | None = None  # with the side that is touched
-    of: frozenset[str] = frozenset()  # the unknowns that switch there, where that is known
-    bent: Quantity | None = None  # the control that does not act linearly: two of its switches are never one
-
-
-@dataclass(frozen=True, slots=True)
-class Signal:
-    """A control or state with limits, by its values at the points; it switches where it meets or leaves a limit."""
-
-    quantity: Quantity
-    values: Array
-    lower: float
-    upper: float
-    state: bool
-
-    @property
-    def labels(self) -> Indices:
-        """-1 on the lower limit, 1 on the upper one, 0 between them, at every point."""
-        room = self.upper - self.lower
-        if not np.isfinite(room):
-            room = max(float(np.ptp(self.values)), 1e-300)
-        near = room * (STATE_ON_LIMIT if self.state else ON_LIMIT)
-        labels = np.zeros(len(self.values), dtype=np.int64)
-        labels[self.values - self.lower < near] = -1
-        labels[self.upper - self.values < near] = 1
-        return labels
-
-
-def signals(path: Trajectory) -> list[Signal]:
-    """All controls and states of a path that have limits and lie on one of them somewhere."""
-    lowered = path.program.compiled.lowered
-    state_lower, state_upper, control_lower, control_upper = quantity_bounds(path.program.compiled)
-    found = []
-    for quantities, table, lowers, uppers, state in (
-        (lowered.controls, path.controls, control_lower, control_upper, False),
-        (lowered.states, path.states, state_lower, state_upper, True),
-    ):
-        for index, quantity in enumerate(quantities):
-            signal = Signal(quantity, table[:, index], float(lowers[index]), float(uppers[index]), state)
-            if signal.labels.any():
-                found.append(signal)
-    return found
-
-
-def switches(path: Trajectory, linear: Sequence[Quantity]) -> list[Switch]:
-    """The switches of a solved mesh, in order; none where there are too many to be a structure.
-
-    `linear` are the controls that act linearly in the problem itself, of which this may be a softened form.
-    """
-    found = [switch for signal in signals(path) for switch in _changes(path, signal, linear)]
-    merged = _merged(sorted(found, key=lambda switch: switch.place), path)
-    return merged if len(merged) <= MOST_SWITCHES else []
-
-
-LEAP = 0.1
-"""How far a control leaps at a break, relative to its size, where it switches just there."""
-
-
-def jumps_at_breaks(path: Trajectory) -> bool:
-    """Whether a control that has limits leaps at a break of a plain mesh.
-
-    That is an accident, and the points do not notice it: but where between the points beside it the control wants to
-    switch, and with it the costate, remains open.
-    """
-    where = path.program.layout
-    if any(place.label.startswith(SWITCH + " ") for place in path.program.compiled.lowered.problem.places):
-        return False
-    inner = np.setdiff1d(where.first[1:-1], where.first[where.at_place])
-    controls = path.program.compiled.lowered.controls
-    limited = [controls.index(signal.quantity) for signal in signals(path) if not signal.state]
-    leaps = np.abs(path.controls[inner] - path.controls[inner - 1])[:, limited]
-    return bool((leaps > LEAP * np.abs(path.controls[:, limited]).max(axis=0, initial=1e-300)).any())
-
-
-def _changes(path: Trajectory, signal: Signal, linear: Sequence[Quantity]) -> list[Switch]:
-    """Places where the label of a signal changes.
-
-    A short passage of a control between two limits is one switch where it acts linearly; else it may not jump, and the
-    passage stays.  A state that is at its limit for a point or two only touches it there.
-    """
-    bent = not signal.state and signal.quantity not in linear
-    states = path.program.compiled.lowered.states
-    smooth = signal.state and (signal.quantity[0], signal.quantity[1] + 1) in states
-    labels, points, where = signal.labels, path.points, path.program.layout
-    span = float(np.ptp(path.places))
-    owner = np.repeat(np.arange(len(where.first) - 1), np.diff(where.first))
-    kept: list[tuple[int, int]] = []
-    found = []
-    for first, last in _runs(labels):
-        inner = first > 0 and last < len(labels) - 1
-        short = owner[last] - owner[first] <= 1
-        if inner and short and not bent and labels[first] == 0 and labels[first - 1] != labels[last + 1]:
-            continue
-        brief = last - first < 2 or points[last] - points[first] < TOUCH * span
-        if signal.state and labels[first] != 0 and brief:
-            if inner and smooth:
-                middle = float(points[first] + points[last]) / 2
-                touching = (signal.quantity, int(labels[first]))
-                found.append(Switch(middle, float(points[first - 1]), float(points[last + 1]), touching))
-            continue
-        kept.append((first, last))
-    for before, after in pairwise(kept):
-        left, right = before[1], after[0]
-        if labels[left] == labels[right]:
-            continue
-        low, high = float(points[left]), float(points[right])
-        place = (low + high) / 2
-        if labels[left] * labels[right] == -1 and bent:
-            found += [Switch(place, low, high, bent=signal.quantity) for place in (low, high)]
-            continue
-        if labels[left] * labels[right] == -1:
-            start, end = int(owner[left]), int(owner[right])
-            low, high = float(path.breaks[start]), float(path.breaks[end + 1])
-            place = _clean_jump(path, signal, slice(where.first[start], where.first[end + 1]), low, high, labels[left])
-        found.append(Switch(place, low, high, bent=signal.quantity if bent else None))
-    return found
-
-
-def _runs(labels: Indices) -> list[tuple[int, int]]:
-    """First and last index of every run of equal labels."""
-    starts = np.concatenate([[0], np.flatnonzero(np.diff(labels)) + 1])
-    ends = np.concatenate([starts[1:] - 1, [len(labels) - 1]])
-    return [(int(first), int(last)) for first, last in zip(starts, ends, strict=True)]
-
-
-def _clean_jump(path: Trajectory, signal: Signal, inside: slice, low: float, high: float, side: int) -> float:
-    """Where a clean jump from one limit to the other has the same integral between `low` and `high`."""
-    where = path.program.layout
-    total = float((where.measures * where.lengths(path.places))[inside] @ signal.values[inside])
-    first, second = (signal.lower, signal.upper) if side < 0 else (signal.upper, signal.lower)
-    return float(np.clip((total - second * high + first * low) / (first - second), low, high))
-
-
-def _merged(found: list[Switch], path: Trajectory) -> list[Switch]:
-    """Switches of several quantities at one place as one; those at a place that is there already as none."""
-    span = float(np.ptp(path.places))
-    widths = np.diff(path.breaks)
-    groups: list[list[Switch]] = []
-    for switch in found:
-        if switch.touching is not None or np.abs(path.places - switch.place).min() < 1e-3 * span:
-            continue
-        width = float(widths[np.clip(np.searchsorted(path.breaks, switch.place) - 1, 0, len(widths) - 1)])
-        apart = groups and switch.bent is not None and any(other.bent == switch.bent for other in groups[-1])
-        if groups and not apart and switch.place - groups[-1][-1].place < min(width, 0.05 * span):
-            groups[-1].append(switch)
-        else:
-            groups.append([switch])
-    merged = [
-        Switch(float(np.mean([s.place for s in group])), min(s.low for s in group), max(s.high for s in group))
-        for group in groups
-    ]
-    for touch in (switch for switch in found if switch.touching is not None):
-        taken = np.array([*path.places, *(switch.place for switch in merged)])
-        if np.abs(taken - touch.place).min() > 5e-3 * span:
-            merged.append(touch)
-    return sorted(merged, key=lambda switch: switch.place)
-
 
 Release = tuple[Quantity, float, float]
 """A quantity that is not to be held between two places."""
@@ -294,9 +121,6 @@ def _without_needless(kept: list[Switch], spots: list[Spot], held: tuple[Held, .
         if isinstance(place, Switch) and place.touching is None and same:
             return [switch for switch in kept if switch.place != at]
     return None
-
-
-SWITCH = "switch"
 
 
 Spot = tuple[float, Place | Switch]
@@ -424,70 +248,3 @@ def softened(path: Trajectory, chosen: list[int], softness: float) -> Problem:
         terms.append(Product((weight, Power(Name(name, order), Number(2.0, "2"))), (False, False)))
     integrand = terms[0] if len(terms) == 1 else Sum(tuple(terms), (False,) * len(terms))
     return replace(problem, integrand=integrand)
-
-
-WRONG = 0.2
-"""How far, relative to the largest on its arc, the slope of the value may point away from the limit that is held."""
-
-
-def held_rightly(path: Trajectory) -> bool:
-    """Whether leaving any held limit would make the value worse."""
-    return not wrongly_held(path)
-
-
-def wrongly_held(path: Trajectory) -> list[Held]:
-    """The held limits that it would be better to leave: the slope of the Lagrangian has the wrong sign.
-
-    For a control at any point of its arc, but for what discretisation blurs near its ends; for a state, whose
-    multiplier may be spread in many ways, in the sum.
-    """
-    program = path.program
-    where, problem = program.layout, program.compiled.lowered.problem
-    slopes = -path.bound_multipliers * program.scale / abs(program.value_scale)
-    lowered = program.compiled.lowered
-    resting = [signal for signal in signals(path) if signal.state]
-    found = []
-    for held in problem.held:
-        quantity = (held.name, held.order)
-        inside = where.stretch == held.stretch
-        if any(signal.quantity != quantity and signal.labels[inside].all() for signal in resting):
-            continue  # a state rests on its limit besides: the multipliers are not unique
-        if quantity in lowered.controls:
-            outward = -held.side * slopes[where.controls[inside, lowered.controls.index(quantity)]]
-            outward = outward / where.measures[inside]
-            wrong = outward.min(initial=0.0) < -WRONG * np.abs(outward).max(initial=0.0)
-        else:
-            wrong = -held.side * slopes[where.inner[inside, lowered.states.index(quantity)]].sum() < 0
-        if wrong:
-            found.append(held)
-    return found
-
-
-def released(path: Trajectory, wrong: Sequence[Held]) -> list[Release]:
-    """What is to be let go, and between which places: up to the next ones beyond which it is held again.
-
-    A control that runs singular close to its limit looks held here and there, wherever it is looked at.
-    """
-    held = path.program.compiled.lowered.problem.held
-    found = []
-    for one in wrong:
-        first = last = one.stretch
-        others = {h.stretch for h in held if (h.name, h.order) == (one.name, one.order)}
-        while first > 0 and first - 1 not in others:
-            first -= 1
-        while last + 2 < len(path.places) and last + 1 not in others:
-            last += 1
-        found.append(((one.name, one.order), float(path.places[first]), float(path.places[last + 1])))
-    return found
-
-
-def shrunk(path: Trajectory) -> list[Held]:
-    """What is held along stretches that shrink towards nothing beside others where it is free."""
-    held = path.program.compiled.lowered.problem.held
-    found = []
-    for start, end in shrinking(path):
-        at = int(np.argmin(np.abs(path.places - start)))
-        stretch, beside = (at, at - 1) if end > start else (at - 1, at)
-        across = {(h.name, h.order) for h in held if h.stretch == beside}
-        found += [h for h in held if h.stretch == stretch and (h.name, h.order) not in across]
-    return found

@@ -18,9 +18,11 @@ from solvers.minimise.newton import stationary_point
 from solvers.problem import Problem, Seek
 from solvers.search import refinement
 from solvers.search.attempt import SOLVED
+from solvers.search.holding import held_rightly
 from solvers.search.pursuit import go_on
 from solvers.search.record import End, Pursuit
-from solvers.search.structure import SWITCH, at_the_edge, held_rightly, present_switches
+from solvers.search.signals import SWITCH
+from solvers.search.structure import at_the_edge, present_switches
 from solvers.solution import MeshStep
 from solvers.transcription.functions import Compiled, with_constants
 from solvers.transcription.numbers import Numbers

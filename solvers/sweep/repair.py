@@ -17,7 +17,7 @@ from solvers.problem import Problem
 from solvers.search.pursuit import pursue
 from solvers.search.record import End, Pursuit
 from solvers.search.sharpen import sharpen, with_structure
-from solvers.search.structure import SWITCH
+from solvers.search.signals import SWITCH
 from solvers.transcription.functions import compile_problem
 from solvers.transcription.lowering import lower
 from solvers.transcription.mesh import Mesh, interval

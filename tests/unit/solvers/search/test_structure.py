@@ -9,21 +9,9 @@ from solvers.formula.evaluate import REAL, evaluate
 from solvers.formula.nodes import Number
 from solvers.minimise.ipopt import Minimum, Outcome
 from solvers.problem import Place
-from solvers.search.structure import (
-    MOST_SWITCHES,
-    SWITCH,
-    Switch,
-    at_the_edge,
-    determined_by,
-    present_switches,
-    released,
-    shrinking,
-    signals,
-    softened,
-    switches,
-    with_switches,
-    wrongly_held,
-)
+from solvers.search.holding import released, wrongly_held
+from solvers.search.signals import MOST_SWITCHES, SWITCH, Switch, signals, switches
+from solvers.search.structure import at_the_edge, determined_by, present_switches, shrinking, softened, with_switches
 from solvers.solution import Verdict
 from solvers.solve import solve
 from solvers.transcription.mesh import uniform
