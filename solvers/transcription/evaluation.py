@@ -82,13 +82,6 @@ def point_slopes(compiled: Compiled, where: Layout, z: Array) -> Array:
     return mapped(compiled.point.jacobian, v, d)
 
 
-def end_outputs(compiled: Compiled, where: Layout, z: Array) -> Array:
-    """All outputs of the end function."""
-    return np.asarray(
-        mapped(compiled.end.value, end_inputs(where, z)[None], np.array(compiled.constants, dtype=float)[None])[0]
-    )
-
-
 def end_inputs(where: Layout, z: Array) -> Array:
     """The input y of the end function: states at every place, places, parameters, integrals."""
     parts = (z[where.nodes[where.at_place]].ravel(), z[where.places], z[where.parameters], z[where.integrals])
