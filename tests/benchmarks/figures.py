@@ -19,11 +19,11 @@ from pathlib import Path
 from typing import Any
 from unittest import mock
 
-import numpy as np
-
 from service.threads import ONE_THREAD
 
-os.environ.update(ONE_THREAD)
+os.environ.update(ONE_THREAD)  # before NumPy is loaded: a second thread only waits, and doubles the processor time
+
+import numpy as np
 
 from service import samples
 from service.assemble import assemble
