@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from dataclasses import dataclass
 from functools import lru_cache
 from typing import TYPE_CHECKING, Any
 
@@ -22,38 +23,53 @@ CHUNK = 32
 """Sets of inputs that a function takes at once: mapping it costs some microseconds for each, so it is done but once."""
 
 
+@dataclass(frozen=True, slots=True)
+class _Bound:
+    """A function mapped over so many sets of inputs, bound once and for all to memory on both sides."""
+
+    buffer: Any  # what `evaluate` works with: it has to live as long
+    evaluate: Callable[[], None]
+    inputs: tuple[Array, ...]
+    outputs: Array
+
+
 @lru_cache(maxsize=256)
-def _by_chunks(function: ca.Function, at_once: int) -> tuple[Any, Callable[[], None]]:
-    """The memory of a function mapped over so many sets of inputs, and what evaluates it there."""
-    return (function.map(at_once) if at_once > 1 else function).buffer()
+def _bound(function: ca.Function, at_once: int) -> _Bound:
+    buffer: Any  # the stubs take its arguments for pairs of memory and size
+    buffer, evaluate = (function.map(at_once) if at_once > 1 else function).buffer()
+    inputs = tuple(np.zeros((at_once, function.numel_in(k))) for k in range(function.n_in()))
+    outputs = np.empty((at_once, function.nnz_out(0)))
+    for k, memory in enumerate(inputs):
+        buffer.set_arg(k, memoryview(memory))  # type: ignore[arg-type]
+    buffer.set_res(0, memoryview(outputs))  # type: ignore[arg-type]
+    return _Bound(buffer, evaluate, inputs, outputs)
 
 
 class Mapped:
-    """A CasADi function at many sets of inputs; the arrays on both sides are the function's own memory."""
+    """A CasADi function at many sets of inputs."""
 
     def __init__(self, function: ca.Function, count: int) -> None:
-        self._count, self._step = count, CHUNK if count > 1 else 1
-        self._padded = -(-count // self._step) * self._step
-        self._inputs = [np.zeros((self._padded, function.numel_in(k))) for k in range(function.n_in())]
-        self._outputs = int(function.nnz_out(0))
-        self._buffer, self._evaluate = _by_chunks(function, self._step)
+        self._count = count
+        self._bound = _bound(function, CHUNK if count > 1 else 1)
 
     def __call__(self, *arguments: Array) -> Array:
-        """The nonzeros of the output (sets x nonzeros) from inputs (sets x entries, or what spreads to that)."""
-        result = np.empty((self._padded, self._outputs))
+        """The nonzeros of the output (sets x nonzeros) from inputs (sets x entries; a single set also as a vector)."""
+        bound, count = self._bound, self._count
+        step, nonzeros = bound.outputs.shape
+        result = np.empty((count, nonzeros))
         if not result.size:
-            return result[: self._count]
-        for own, given in zip(self._inputs, arguments, strict=True):
-            own[: self._count] = given
-            own[self._count :] = own[0]
-        views = [memoryview(own) for own in (*self._inputs, result)]  # type: ignore[arg-type]
-        for start in range(0, self._padded, self._step):
-            *inputs, made = (view[start : start + self._step] for view in views)
-            for k, view in enumerate(inputs):
-                self._buffer.set_arg(k, view)
-            self._buffer.set_res(0, made)
-            self._evaluate()
-        return result[: self._count]
+            return result
+        if count == 1:
+            arguments = tuple(given.reshape(1, -1) for given in arguments)
+        for first in range(0, count, step):
+            chosen = slice(first, min(first + step, count))
+            size = chosen.stop - first
+            for memory, given in zip(bound.inputs, arguments, strict=True):
+                memory[:size] = given[chosen]
+                memory[size:] = memory[0]
+            bound.evaluate()
+            result[chosen] = bound.outputs[:size]
+        return result
 
 
 def mapped(function: ca.Function, *arguments: Array) -> Array:
