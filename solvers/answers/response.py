@@ -177,7 +177,7 @@ def by_constant(path: Trajectory, index: int, shift: Shift) -> tuple[Array, Arra
     along_v[:, first], along_v[:, first + 1] = places[where.stretch], places[where.stretch + 1]
     outputs, slopes = _directional(point.value, v, d, point_weights(path), along_v, along_d)
     gradient, rows = np.zeros(where.size), np.zeros(program.rows.count)
-    np.add.at(gradient, program.gather, slopes)
+    np.add.at(gradient, program.layout.gather, slopes)
     np.add.at(rows, numbers.target, outputs[:, :-1] * numbers.factor)
     y = end_inputs(where, path.z)[None]
     constants = np.array(compiled.constants, dtype=float)[None]
@@ -186,7 +186,7 @@ def by_constant(path: Trajectory, index: int, shift: Shift) -> tuple[Array, Arra
     before = len(places) * point.states
     along_y[0, before : before + len(places)] = places
     outputs, slopes = _directional(end.value, y, constants, end_weights(path)[None], along_y, along_constants)
-    np.add.at(gradient, program.end_gather, slopes[0])
+    np.add.at(gradient, program.layout.end_gather, slopes[0])
     rows[program.rows.conditions :] += outputs[0, :-1] / program.row_scale[program.rows.conditions :]
     return gradient * program.scale / abs(program.value_scale), rows
 

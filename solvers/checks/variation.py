@@ -126,13 +126,13 @@ def _condensed(trial: Array, forms: Array) -> Array:
 def _at_places(sampler: Sampler) -> sp.coo_matrix:
     """Second derivatives of the endpoint term and of the conditions, weighed."""
     path, program, end = sampler.path, sampler.path.program, sampler.compiled.end
-    y = path.z[program.end_gather]
+    y = path.z[program.layout.end_gather]
     weights = np.append(path.row_multipliers[program.rows.conditions :], sampler.sign)
     numbers = mapped(end.hessian, y[None, :], sampler.constants[None, :], weights[None, :])[0]
     rows, columns = np.array(end.hessian_rows, dtype=int), np.array(end.hessian_columns, dtype=int)
     mixed = rows != columns
-    row = program.end_gather[np.concatenate([rows, columns[mixed]])]
-    column = program.end_gather[np.concatenate([columns, rows[mixed]])]
+    row = program.layout.end_gather[np.concatenate([rows, columns[mixed]])]
+    column = program.layout.end_gather[np.concatenate([columns, rows[mixed]])]
     scale = program.scale[row] * program.scale[column] / abs(program.value_scale)
     values = np.concatenate([numbers, numbers[mixed]]) * scale
     return sp.coo_matrix((values, (row, column)), shape=(program.layout.size,) * 2)

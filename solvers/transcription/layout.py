@@ -24,7 +24,8 @@ class Layout:
     `nodes` ((N+1) x n), `inner` (M x n: states at the points), `controls` (M x m), `places`, `parameters`,
     `integrals`; `first` (N+1) the index of each interval's first point; `fractions` (M) and `measures` (M) of each
     point: its place as a fraction of its stretch, and its quadrature weight in fractions of the stretch;
-    `stretch` (M) the stretch of each point; `at_place` (places) the node at each place.
+    `stretch` (M) the stretch of each point; `at_place` (places) the node at each place; `gather` (M x inputs) and
+    `end_gather` what the point function takes at each point, and the end function.
     """
 
     size: int
@@ -39,6 +40,8 @@ class Layout:
     measures: Array
     stretch: Indices
     at_place: Indices
+    gather: Indices
+    end_gather: Indices
 
     def lengths(self, places: Array) -> Array:
         """The length of each point's stretch (M), from the values of the places."""
@@ -97,8 +100,12 @@ def layout(compiled: Compiled, mesh: Mesh) -> Layout:
     measures = widths[owner] * np.concatenate([i.scheme.weights for i in mesh.intervals])
     stretch = np.array([i.stretch for i in mesh.intervals])
     at_place = np.concatenate([[0], np.flatnonzero(np.diff(stretch)) + 1, [len(widths)]])
+    own_stretch = stretch[owner]
+    gather = np.hstack([inner, controls, places[own_stretch][:, None], places[own_stretch + 1][:, None],
+                        np.tile(parameters, (len(owner), 1))]).astype(np.int64)  # fmt: skip
+    end_gather = np.concatenate([nodes[at_place].ravel(), places, parameters, integrals]).astype(np.int64)
     return Layout(position + compiled.point.integrals, nodes, inner, controls, places, parameters, integrals, first,
-                  fractions, measures, stretch[owner], at_place)  # fmt: skip
+                  fractions, measures, own_stretch, at_place, gather, end_gather)  # fmt: skip
 
 
 def row_order(compiled: Compiled, mesh: Mesh, where: Layout) -> Rows:

@@ -9,11 +9,12 @@ from __future__ import annotations
 from copy import copy
 from dataclasses import dataclass
 
+import casadi as ca
 import numpy as np
 from numpy.typing import NDArray
 
 from solvers.transcription.entries import Entries, Pattern, Recipe, counted
-from solvers.transcription.evaluation import Mapped
+from solvers.transcription.evaluation import Evaluation, whole_chunks
 from solvers.transcription.functions import Compiled
 from solvers.transcription.layout import Layout, Rows
 from solvers.transcription.linear_rows import loose_rows, slope_entries, slopes, spanned
@@ -34,9 +35,23 @@ class Placement:
     scale: Array  # z times scale is in SI
     row_scale: Array  # g times row_scale is in SI
     value_scale: float  # f times value_scale is the functional in SI (negative for a maximum)
-    gather: Indices  # M x inputs of the point function
-    end_gather: Indices
     fixed: NDArray[np.bool_]  # variables that cannot move
+
+
+class Both:
+    """One of the functions at all points and at the ends: its numbers stand in one array, those of the points first."""
+
+    def __init__(self, point: ca.Function, at_points: list[Array], end: ca.Function, at_ends: list[Array]) -> None:
+        shape = len(at_points[0]), point.nnz_out(0)
+        count = shape[0] * shape[1]
+        self.numbers = np.zeros(count + end.nnz_out(0))
+        self.at_points, self.at_ends = self.numbers[:count].reshape(shape), self.numbers[count:]
+        self._parts = Evaluation(point, at_points, self.at_points), Evaluation(end, at_ends, self.at_ends[None])
+
+    def evaluate(self) -> None:
+        """Make the numbers of what the inputs are now."""
+        for part in self._parts:
+            part()
 
 
 class Numbers:
@@ -62,23 +77,29 @@ class Numbers:
         self.factor = np.hstack(factor) / placed.row_scale[self.target]
         self.cost = where.measures * self.value_factor
         self.condition_rows = rows.conditions + np.arange(self.conditions)
-        self._sizes = placed.scale[placed.gather]
-        self._end_sizes = placed.scale[placed.end_gather]
-        self._take(placed.compiled.constants)
-        self._point = {kind: Mapped(getattr(point, kind), self.count) for kind in ("value", "jacobian", "hessian")}
-        self._end = {kind: Mapped(getattr(end, kind), 1) for kind in ("value", "jacobian", "hessian")}
+        self._condition_sizes = placed.row_scale[rows.conditions :]
+        self._gather, self._end_gather = whole_chunks(placed.layout.gather), placed.layout.end_gather
+        self._sizes, self._end_sizes = placed.scale[self._gather], placed.scale[self._end_gather]
         self._spanned = spanned(placed)
         self._loose = list(loose_rows(placed))
         self._linear = self._gathered()
+        self._take(placed.compiled.constants)
         self._jacobian, self._gradient, self._hessian = self._recipes()
 
     def _take(self, constants: tuple[float, ...]) -> None:
-        """Put values of the constants in; nothing is known yet for them."""
-        fractions = self._placed.layout.fractions
-        self._given = np.hstack([fractions[:, None], np.tile(constants, (self.count, 1))])
-        self._constants = np.array(constants, dtype=float)
-        self._z = np.full(self._placed.layout.size, np.nan)
-        self._known: dict[str, Array] = {}
+        """Make the functions for values of the constants; nothing is known yet for them."""
+        point, end = self._placed.compiled.point, self._placed.compiled.end
+        fractions, rows = self._placed.layout.fractions, len(self._gather)
+        given = np.hstack([fractions[:, None], np.tile(constants, (self.count, 1))])
+        at_points = [np.zeros((rows, point.inputs)), whole_chunks(given)]
+        at_ends = [np.zeros((1, end.inputs)), np.array(constants, dtype=float)[None]]
+        weights = np.zeros((rows, point.outputs)), np.zeros((1, end.outputs))
+        self._inputs, self._weights = (at_points[0], at_ends[0][0]), (weights[0][: self.count], weights[1][0])
+        self._values = Both(point.value, at_points, end.value, at_ends)
+        self._slopes = Both(point.jacobian, at_points, end.jacobian, at_ends)
+        self._bends = Both(point.hessian, [*at_points, weights[0]], end.hessian, [*at_ends, weights[1]])
+        self._z = b""
+        self._known: set[Both] = set()
 
     def restated(self, constants: tuple[float, ...]) -> Numbers:
         """The same numbers for other values of the constants."""
@@ -102,77 +123,67 @@ class Numbers:
 
     def value(self, z: Array) -> float:
         """f."""
-        outputs, end = self._outputs(z)
-        return float(outputs[:, -1] @ self.cost + end[-1] * self.value_factor)
+        made = self._made(self._values, z)
+        return float(made.at_points[: self.count, -1] @ self.cost + made.at_ends[-1] * self.value_factor)
 
     def constraints(self, z: Array) -> Array:
         """g."""
         placed, rows = self._placed, self._placed.rows
         n, c = placed.compiled.point.states, placed.compiled.point.constraints
-        outputs, end = self._outputs(z)
+        made = self._made(self._values, z)
+        parts = made.at_points[: self.count, :-1] * self.factor
         columns, rank, values = self._linear
         g = counted(rank, values * z[columns], rows.count)
-        g[: rows.ends] = (outputs[:, :n] * self.factor[:, :n]).ravel() + slopes(self._spanned, z)
-        g[rows.pointwise : rows.rims] = (outputs[:, n : n + c] * self.factor[:, n : n + c]).ravel()
-        g[rows.integrals : rows.conditions] += (outputs[:, n + c : -1] * self.factor[:, n + c :]).sum(axis=0)
-        g[rows.conditions :] = end[:-1] / placed.row_scale[rows.conditions :]
+        g[: rows.ends] = parts[:, :n].ravel() + slopes(self._spanned, z)
+        g[rows.pointwise : rows.rims] = parts[:, n : n + c].ravel()
+        g[rows.integrals : rows.conditions] += parts[:, n + c :].sum(axis=0)
+        g[rows.conditions :] = made.at_ends[:-1] / self._condition_sizes
         return g
 
     def gradient(self, z: Array) -> Array:
         """The slopes of f."""
         found = np.zeros(len(z))
-        found[self._gradient.pattern.rows] = self._gradient.nonzeros(self._slopes(z))
+        found[self._gradient.pattern.rows] = self._gradient.nonzeros(self._made(self._slopes, z).numbers)
         return found
 
     def jacobian(self, z: Array) -> Array:
         """The nonzeros of the slopes of g."""
-        return self._jacobian.nonzeros(self._slopes(z))
+        return self._jacobian.nonzeros(self._made(self._slopes, z).numbers)
 
     def hessian(self, z: Array, weight_f: float, weight_g: Array) -> Array:
         """The nonzeros of the upper triangle of the Hessian of weight_f * f + weight_g.g."""
         rows, n = self._placed.rows, self._placed.compiled.point.states
         c = self._placed.compiled.point.constraints
-        weights = np.empty((self.count, self._placed.compiled.point.outputs))
-        weights[:, :n] = weight_g[: rows.ends].reshape(self.count, n) * self.factor[:, :n]
-        weights[:, n : n + c] = weight_g[rows.pointwise : rows.rims].reshape(self.count, c) * self.factor[:, n : n + c]
-        weights[:, n + c : -1] = weight_g[rows.integrals : rows.conditions] * self.factor[:, n + c :]
+        weights, end_weights = self._weights
+        weights[:, :n] = weight_g[: rows.ends].reshape(self.count, n)
+        weights[:, n : n + c] = weight_g[rows.pointwise : rows.rims].reshape(self.count, c)
+        weights[:, n + c : -1] = weight_g[rows.integrals : rows.conditions]
+        weights[:, :-1] *= self.factor
         weights[:, -1] = self.cost * weight_f
-        on_conditions = weight_g[rows.conditions :] / self._placed.row_scale[rows.conditions :]
-        end_weights = np.append(on_conditions, weight_f * self.value_factor)
-        v, y = self._inputs(z)
-        numbers = np.concatenate([self._point["hessian"](v, self._given, weights).ravel(),
-                                  self._end["hessian"](y, self._constants, end_weights).ravel()])  # fmt: skip
-        return self._hessian.nonzeros(numbers)
+        end_weights[:-1] = weight_g[rows.conditions :] / self._condition_sizes
+        end_weights[-1] = weight_f * self.value_factor
+        self._known.discard(self._bends)
+        return self._hessian.nonzeros(self._made(self._bends, z).numbers)
 
-    def _inputs(self, z: Array) -> tuple[Array, Array]:
-        """Variables in SI as the functions take them; what was made of other ones is forgotten."""
-        if not np.array_equal(z, self._z):
-            self._z[:] = z
-            self._known = {"v": z[self._placed.gather] * self._sizes, "y": z[self._placed.end_gather] * self._end_sizes}
-        return self._known["v"], self._known["y"]
-
-    def _outputs(self, z: Array) -> tuple[Array, Array]:
-        """The outputs of the two functions: points x outputs, and those at the ends."""
-        v, y = self._inputs(z)
-        if "outputs" not in self._known:
-            self._known["outputs"] = self._point["value"](v, self._given)
-            self._known["ends"] = self._end["value"](y, self._constants)[0]
-        return self._known["outputs"], self._known["ends"]
-
-    def _slopes(self, z: Array) -> Array:
-        """The nonzeros of the Jacobians of the two functions, one after the other."""
-        v, y = self._inputs(z)
-        if "slopes" not in self._known:
-            self._known["slopes"] = np.concatenate([self._point["jacobian"](v, self._given).ravel(),
-                                                    self._end["jacobian"](y, self._constants).ravel()])  # fmt: skip
-        return self._known["slopes"]
+    def _made(self, functions: Both, z: Array) -> Both:
+        """What functions make of z; what was made of other variables is forgotten."""
+        key = z.tobytes()
+        if key != self._z:
+            np.multiply(z[self._gather], self._sizes, out=self._inputs[0])
+            np.multiply(z[self._end_gather], self._end_sizes, out=self._inputs[1])
+            self._z = key
+            self._known.clear()
+        if functions not in self._known:
+            functions.evaluate()
+            self._known.add(functions)
+        return functions
 
     def _moving(self) -> NDArray[np.bool_]:
         """The inputs of the point function that are not fixed places all along: only these need derivatives."""
         placed, point = self._placed, self._placed.compiled.point
         moving = np.ones(point.inputs, dtype=bool)
         for place in (point.states + point.controls, point.states + point.controls + 1):
-            moving[place] = not placed.fixed[placed.gather[:, place]].all()
+            moving[place] = not placed.fixed[placed.layout.gather[:, place]].all()
         return moving
 
     def _gathered(self) -> tuple[Indices, Indices, Array]:
@@ -191,28 +202,32 @@ class Numbers:
         out, by = np.array(point.jacobian_rows, int), np.array(point.jacobian_columns, int)
         each = np.arange(self.count)[:, None] * len(out)
         inside = np.flatnonzero((out < point.outputs - 1) & moving[by])
-        columns, own = placed.gather[:, by[inside]], out[inside]
+        columns, own = placed.layout.gather[:, by[inside]], out[inside]
         jacobian.add(self.target[:, own], columns, self.factor[:, own] * scale[columns], each + inside)
         inside = np.flatnonzero((out == point.outputs - 1) & moving[by])
-        columns = placed.gather[:, by[inside]]
+        columns = placed.layout.gather[:, by[inside]]
         gradient.add(columns, 0, self.cost[:, None] * scale[columns], each + inside)
-        offset = self.count * len(out)
+        offset = self._slopes.at_points.size
         out, by = np.array(end.jacobian_rows, int), np.array(end.jacobian_columns, int)
         inside = np.flatnonzero(out < self.conditions)
-        columns, own = placed.end_gather[by[inside]], self.condition_rows[out[inside]]
+        columns, own = placed.layout.end_gather[by[inside]], self.condition_rows[out[inside]]
         jacobian.add(own, columns, scale[columns] / row_scale[own], offset + inside)
         inside = np.flatnonzero(out == self.conditions)
-        columns = placed.end_gather[by[inside]]
+        columns = placed.layout.end_gather[by[inside]]
         gradient.add(columns, 0, self.value_factor * scale[columns], offset + inside)
         first, second = np.array(point.hessian_rows, int), np.array(point.hessian_columns, int)
         inside = np.flatnonzero(moving[first] & moving[second])
         sources = np.arange(self.count)[:, None] * len(first) + inside
-        offset = self.count * len(first)
+        offset = self._bends.at_points.size
         first, second = first[inside], second[inside]
-        self._add_pairs(hessian, placed.gather[:, first], placed.gather[:, second], first != second, sources)
+        self._add_pairs(
+            hessian, placed.layout.gather[:, first], placed.layout.gather[:, second], first != second, sources
+        )
         first, second = np.array(end.hessian_rows, int), np.array(end.hessian_columns, int)
         sources = offset + np.arange(len(first))
-        self._add_pairs(hessian, placed.end_gather[first], placed.end_gather[second], first != second, sources)
+        self._add_pairs(
+            hessian, placed.layout.end_gather[first], placed.layout.end_gather[second], first != second, sources
+        )
         hessian.add(0, 0, 0.0)  # so that there is a pattern where nothing is curved
         shapes = (placed.rows.count, size), (size, 1), (size, size)
         made = (e.recipe(s) for e, s in zip((jacobian, gradient, hessian), shapes, strict=True))

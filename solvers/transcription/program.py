@@ -43,15 +43,9 @@ def transcribe(compiled: Compiled, mesh: Mesh, where: Layout, scales: Scales, ro
     rows = row_order(compiled, mesh, where)
     scale = spread(compiled, where, scales)
     row_scale = _row_scale(compiled, mesh, where, scales, row_sizes)
-    starts, ends = where.places[where.stretch], where.places[where.stretch + 1]
-    gather = np.hstack([where.inner, where.controls, starts[:, None], ends[:, None],
-                        np.tile(where.parameters, (len(where.fractions), 1))]).astype(np.int64)  # fmt: skip
-    end_gather = np.concatenate([where.nodes[where.at_place].ravel(), where.places, where.parameters,
-                                 where.integrals]).astype(np.int64)  # fmt: skip
     sign = -1.0 if compiled.lowered.problem.seek is Seek.MAXIMUM else 1.0
     lower, upper, row_lower, row_upper = limits(compiled, where, rows)
-    placed = Placement(compiled, mesh, where, rows, scale, row_scale, sign * row_sizes.value, gather, end_gather,
-                       lower == upper)  # fmt: skip
+    placed = Placement(compiled, mesh, where, rows, scale, row_scale, sign * row_sizes.value, lower == upper)
     return Program(
         **{f.name: getattr(placed, f.name) for f in fields(Placement)},
         scales=scales,

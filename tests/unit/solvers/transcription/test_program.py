@@ -122,7 +122,7 @@ def written_out(program):
         signs = [1.0 if place else (-1.0) ** k for k in range(len(modes))]
         rims.append(ca.mtimes(ca.DM(signs).T, ca.mtimes(ca.DM(modes), values)))
     integrals = ca.vertcat(*(physical[int(k)] for k in where.integrals))
-    outside = compiled.end.value(physical[program.end_gather.tolist()], constants)
+    outside = compiled.end.value(physical[program.layout.end_gather.tolist()], constants)
     g = ca.vertcat(
         *defects, *ends, *bodies, *rims, integrals - ca.vertcat(*ca.vertsplit(totals)[:-1]), *ca.vertsplit(outside)[:-1]
     ) / ca.DM(program.row_scale)
