@@ -64,20 +64,18 @@ def _judged(compiled: Compiled, where: Layout, sketches: Sequence[Array]) -> lis
     """Sketches with their integrals and what they violate; all are evaluated at once."""
     point, constants = compiled.point, constants_of(compiled)
     first = point.states + point.constraints
-    v, d = (np.vstack(parts) for parts in zip(*(point_inputs(compiled, where, z) for z in sketches), strict=True))
-    outputs = mapped(point.value, v, d).reshape(len(sketches), -1, point.outputs)
+    curves = np.stack(sketches)
+    outputs = mapped(point.value, *point_inputs(compiled, where, curves)).reshape(len(curves), -1, point.outputs)
     totals = where.measures @ outputs[:, :, first : first + point.integrals]
-    for z, own in zip(sketches, totals, strict=True):
-        z[where.integrals] = np.where(np.isfinite(own), own, 0.0)
-    y = np.stack([end_inputs(where, z) for z in sketches])
-    ends = mapped(compiled.end.value, y, np.tile(compiled.constants, (len(y), 1)))
+    curves[:, where.integrals] = np.where(np.isfinite(totals), totals, 0.0)
+    ends = mapped(compiled.end.value, end_inputs(where, curves), np.tile(compiled.constants, (len(curves), 1)))
     limits = [interval_of(condition, constants) for condition in (*compiled.pointwise, *compiled.conditions)]
     violated = np.array([_excess(values, *limit) for values, limit in zip(
         (*np.moveaxis(outputs[:, :, point.states : first], 2, 0), *ends.T[:-1, :, None]), limits, strict=True)
-    ]).reshape(-1, len(y))  # fmt: skip
+    ]).reshape(-1, len(curves))  # fmt: skip
     undefined = np.mean(~np.isfinite(outputs), axis=(1, 2)) + np.mean(~np.isfinite(ends), axis=1)
     violations = 1e3 * undefined + violated.sum(axis=0)
-    return [Guess(z, float(violation)) for z, violation in zip(sketches, violations, strict=True)]
+    return [Guess(z, float(violation)) for z, violation in zip(curves, violations, strict=True)]
 
 
 def _excess(values: Array, lower: float, upper: float) -> Array:

@@ -10,12 +10,13 @@ power changes nowhere, so that nothing is said.
 from __future__ import annotations
 
 from collections.abc import Iterator
+from functools import lru_cache
 
 import numpy as np
-from numpy.polynomial import Polynomial
+from numpy.polynomial import polynomial
 from numpy.typing import NDArray
 
-from solvers.transcription.evaluation import mapped, point_inputs
+from solvers.transcription.evaluation import end_inputs, mapped, point_inputs
 from solvers.transcription.functions import SMOOTHING, Compiled, rounds
 from solvers.transcription.layout import Layout
 from solvers.transcription.limits import constants_of, interval_of, quantity_bounds
@@ -44,12 +45,13 @@ def natural_sizes(compiled: Compiled, mesh: Mesh, where: Layout, z: Array) -> di
 def at_natural_sizes(compiled: Compiled, mesh: Mesh, where: Layout, z: Array) -> Array:
     """z with a bend of its natural size where an unknown is zero all along, so that sizes can be taken from it."""
     found = natural_sizes(compiled, mesh, where, z)
-    bent = z.copy()
+    if not found:
+        return z
+    bent = z[None].copy()
     for name, size in found.items():
-        _bend(compiled, mesh, where, bent, name, size)
-    if found:
-        bent[where.integrals] = _totals(compiled, where, bent[None])[0]
-    return bent
+        _bend(compiled, mesh, where, bent, name, np.array([size]))
+    bent[:, where.integrals] = _totals(compiled, where, _values(compiled, where, bent))
+    return np.asarray(bent[0])
 
 
 def _unsized(compiled: Compiled, where: Layout, z: Array) -> Iterator[tuple[str, int]]:
@@ -72,10 +74,9 @@ def _unsized(compiled: Compiled, where: Layout, z: Array) -> Iterator[tuple[str,
 def _natural(compiled: Compiled, mesh: Mesh, where: Layout, z: Array, name: str, order: int) -> float | None:
     """The size of one unknown at which the growth of the outputs changes most."""
     span = abs(float(np.ptp(z[where.places]))) or 1.0
-    sizes = span * 10.0**POWERS
+    sizes = np.asarray(span * 10.0**POWERS, dtype=np.float64)
     bent = np.tile(z, (len(sizes), 1))
-    for row, size in zip(bent, sizes, strict=True):
-        _bend(compiled, mesh, where, row, name, size)
+    _bend(compiled, mesh, where, bent, name, sizes)
     with np.errstate(all="ignore"):  # what vanishes or overflows tells nothing
         growth = np.log10(_outputs(compiled, where, bent))
         change = np.abs(growth[2:] - 2 * growth[1:-1] + growth[:-2])
@@ -91,19 +92,15 @@ def _natural(compiled: Compiled, mesh: Mesh, where: Layout, z: Array, name: str,
     return float(span * 10.0 ** inner[told[np.argmin(np.abs(inner[told]))]])
 
 
-def _bend(compiled: Compiled, mesh: Mesh, where: Layout, z: Array, name: str, size: float) -> None:
-    """Add a bend of a size to one unknown and its derivatives, in z itself; what is given at an end stays."""
+def _bend(compiled: Compiled, mesh: Mesh, where: Layout, curves: Array, name: str, sizes: Array) -> None:
+    """Add a bend to one unknown and its derivatives, of another size in each curve; what is given at an end stays."""
     lowered = compiled.lowered
-    places = z[where.places]
+    places = curves[0, where.places]
     span = float(np.ptp(places)) or 1.0
     nodes, points = ((at - places[0]) / span for at in (mesh.breaks(places), where.points(places)))
     last = len(places) - 1
     held = {place for state, place, c in compiled.fixed if c.equality and lowered.states[state] == (name, 0)}
-    shape = Polynomial([1.0, 0.0, 0.5])
-    if 0 in held:
-        shape = shape * Polynomial([0.0, 1.0])
-    if last in held:
-        shape = shape * Polynomial([1.0, -1.0])
+    shape = _shape(0 in held, last in held)
     for quantities, indices, at in (
         (lowered.states, where.nodes, nodes),
         (lowered.states, where.inner, points),
@@ -111,12 +108,26 @@ def _bend(compiled: Compiled, mesh: Mesh, where: Layout, z: Array, name: str, si
     ):
         for column, (other, order) in enumerate(quantities):
             if other == name:
-                rate = shape.deriv(order) if order else shape
-                z[indices[:, column]] += size * rate(at) / span**order
+                rate = polynomial.polyval(at, polynomial.polyder(shape, order))
+                curves[:, indices[:, column]] += sizes[:, None] * rate / span**order
+
+
+@lru_cache
+def _shape(starts_at_zero: bool, ends_at_zero: bool) -> Array:
+    """A curved polynomial on 0 to 1."""
+    shape = np.array([1.0, 0.0, 0.5])
+    if starts_at_zero:
+        shape = polynomial.polymul(shape, [0.0, 1.0])
+    if ends_at_zero:
+        shape = polynomial.polymul(shape, [1.0, -1.0])
+    return shape
 
 
 def _outputs(compiled: Compiled, where: Layout, bent: Array) -> Array:
-    """How large each output is along each of some curves (curves x outputs), from its limits where it has any."""
+    """How large each output is along each of some curves (curves x outputs), from its limits where it has any.
+
+    The integrals in the curves become their own.
+    """
     point, constants = compiled.point, constants_of(compiled)
     values = _values(compiled, where, bent)
     columns = [values[:, :, k] for k in range(point.states)]
@@ -125,9 +136,8 @@ def _outputs(compiled: Compiled, where: Layout, bent: Array) -> Array:
         columns += [values[:, :, k] - limit for limit in dict.fromkeys(limits)]
     first = point.states + point.constraints
     columns += [values[:, :, k] for k in range(first, point.outputs)]
-    ends = mapped(
-        compiled.end.value, _end_inputs(compiled, where, bent), np.array(compiled.constants, dtype=float)[None]
-    )
+    bent[:, where.integrals] = _totals(compiled, where, values)
+    ends = mapped(compiled.end.value, end_inputs(where, bent), np.tile(compiled.constants, (len(bent), 1)))
     for k, condition in enumerate(compiled.conditions):
         limits = [limit for limit in interval_of(condition, constants) if np.isfinite(limit)]
         columns += [ends[:, [k]] - limit for limit in dict.fromkeys(limits)]
@@ -137,19 +147,12 @@ def _outputs(compiled: Compiled, where: Layout, bent: Array) -> Array:
 
 def _values(compiled: Compiled, where: Layout, bent: Array) -> Array:
     """The outputs of the point function along some curves (curves x M x outputs)."""
-    inputs = [point_inputs(compiled, where, z) for z in bent]
-    v, d = (np.vstack(parts) for parts in zip(*inputs, strict=True))
-    return mapped(compiled.point.value, v, d).reshape(len(bent), len(where.fractions), -1)
+    outputs = mapped(compiled.point.value, *point_inputs(compiled, where, bent))
+    return outputs.reshape(len(bent), -1, compiled.point.outputs)
 
 
-def _totals(compiled: Compiled, where: Layout, bent: Array) -> Array:
+def _totals(compiled: Compiled, where: Layout, values: Array) -> Array:
     """The integrals along some curves."""
     first = compiled.point.states + compiled.point.constraints
-    values = _values(compiled, where, bent)[:, :, first : first + compiled.point.integrals]
-    return np.asarray(np.einsum("m,cmi->ci", where.measures, np.nan_to_num(values, posinf=0.0, neginf=0.0)))
-
-
-def _end_inputs(compiled: Compiled, where: Layout, bent: Array) -> Array:
-    """The inputs of the end function along some curves."""
-    nodes = bent[:, where.nodes[where.at_place].ravel()]
-    return np.hstack([nodes, bent[:, where.places], bent[:, where.parameters], _totals(compiled, where, bent)])
+    integrands = values[:, :, first : first + compiled.point.integrals]
+    return np.asarray(np.einsum("m,cmi->ci", where.measures, np.nan_to_num(integrands, posinf=0.0, neginf=0.0)))
