@@ -25,16 +25,15 @@ from solvers.forms.arc_guess import with_sketches
 from solvers.forms.beside import side_by_side
 from solvers.forms.broken import with_corner
 from solvers.forms.cut import cut_at_switches
+from solvers.forms.first_look import at_constant_speed, first_look
 from solvers.forms.gauge import Form, Gauged, in_parametric_form
 from solvers.forms.gauge_arcs import in_parametric_form_by_arcs
 from solvers.forms.graph import as_graph, checks_on_graph, prices_of_original, uprights
 from solvers.forms.rejoin import rejoin
 from solvers.forms.signs import better_below, one_signed, positive, positive_along
 from solvers.forms.slack import SLACK, rounded_functions, with_slacks
-from solvers.forms.steepness import steep_slopes
 from solvers.minimise.ipopt import FLOOR
 from solvers.problem import Continuation, Problem, Seek
-from solvers.search.attempt import first_mesh
 from solvers.search.chatter import chatter
 from solvers.search.escape import escapes
 from solvers.search.holding import held_rightly
@@ -58,17 +57,11 @@ from solvers.solution import (
     Watch,
 )
 from solvers.starts.extremals import solve_from_starts
-from solvers.starts.guess import guesses
 from solvers.starts.together import IN_TURN, Together
 from solvers.sweep.found import Found, Tools
 from solvers.sweep.points import sweep
 from solvers.tables.usage import table_notes
-from solvers.transcription.evaluation import point_outputs
-from solvers.transcription.functions import compile_problem
-from solvers.transcription.layout import layout
-from solvers.transcription.lowering import lower, primed
-from solvers.transcription.natural import at_natural_sizes
-from solvers.transcription.scaling import find_scales
+from solvers.transcription.lowering import primed
 from solvers.transcription.trajectory import Trajectory, costate_curve, curve
 from solvers.undetermined import Undetermined, undetermined
 from solvers.verdict import judge
@@ -157,7 +150,7 @@ def _from_starts(
     deadline = in_seconds(problem.options.time_limit)
     if problem.options.starts > 1:
         solve_one = partial(_solve_once, form=form)
-        solution = solve_from_starts(problem, watch, solve_one, _first_look(problem)[0], together)
+        solution = solve_from_starts(problem, watch, solve_one, first_look(problem).sizes, together)
         varied = problem.sweeps or problem.continuation
         found = _found(problem, watch, deadline, form) if varied else None  # variants begin at the default guess
     else:
@@ -229,15 +222,16 @@ def _found(problem: Problem, watch: Watch | None, deadline: Deadline, form: Form
         pursuit = _in_given_form(with_slacks(problem), watch, deadline)
         if pursuit.end in (End.CONVERGED, End.STOPPED, End.TIME):
             return Found(pursuit, None)
-    look = cache(lambda: _first_look(problem))
+    look = cache(lambda: first_look(problem))
     for squared in (True, False):
-        gauged = form(problem, lambda: look()[0], squared)
+        gauged = form(problem, lambda: look().sizes, squared)
         if gauged is None or (squared and not gauged.squared):
             continue
         doubtful = squared and not one_signed(problem)
-        if doubtful and not positive(better_below(problem) * look()[1]):
+        if doubtful and not positive(better_below(problem) * look().integrand):
             continue
         room = deadline.within(DOUBTFUL * deadline.left) if doubtful else deadline
+        gauged = gauged if gauged.squared else at_constant_speed(gauged, look())
         pursuit = _in_given_form(with_slacks(gauged.problem), watch, room)
         if squared and pursuit.solved and not _rightly_squared(gauged, pursuit, doubtful):
             continue
@@ -292,27 +286,6 @@ def _rightly_squared(gauged: Gauged, pursuit: Pursuit, doubtful: bool) -> bool:
     error = pursuit.value_error if np.isfinite(pursuit.value_error) else 0.0
     clear = path.value > max(error, FLOOR * abs(path.program.value_scale))
     return clear and (not doubtful or positive_along(gauged, path))
-
-
-def _first_look(problem: Problem) -> tuple[dict[str, float], Array]:
-    """Typical sizes of the independent variable and the unknowns, the same one where they are of one kind or of like
-    size, and the integrand along the first guess."""
-    compiled = compile_problem(lower(problem))
-    mesh = first_mesh(len(problem.places) - 1)
-    where = layout(compiled, mesh)
-    z = guesses(compiled, mesh, where)[0].z
-    span = float(np.ptp(z[where.places])) or 1.0
-    scales = find_scales(compiled, where, at_natural_sizes(compiled, mesh, where, z))
-    steep = steep_slopes(compiled, where, z, scales.controls)
-    found = {
-        name: float(size)
-        for (name, order), size in zip(compiled.lowered.states, scales.states, strict=True)
-        if order == 0
-    }
-    sizes_by_name = {problem.independent: span} | {
-        n: span * steep[n] if n in steep else span if span / 30 < s < span * 30 else s for n, s in found.items()
-    }
-    return sizes_by_name, point_outputs(compiled, where, z)[:, -1]
 
 
 def _solution(

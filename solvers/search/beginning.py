@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from itertools import islice
 from typing import Any
 
 import numpy as np
@@ -13,7 +14,7 @@ from solvers.search.attempt import FIRST_INTERVALS, SOLVED, end_of, first_mesh, 
 from solvers.search.conflict import VIOLATED, curve_of_least_violation, least_violation_of
 from solvers.search.effort import Minimiser
 from solvers.search.record import End, Pursuit
-from solvers.starts.guess import guesses
+from solvers.starts.guess import first_guess, guesses
 from solvers.transcription.layout import layout
 from solvers.transcription.mesh import Mesh
 from solvers.transcription.program import Program
@@ -46,7 +47,7 @@ def begin(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Program, Minimum] | N
     for attempt, (most, times, options) in enumerate(ATTEMPTS):
         mesh = first_mesh(stretches, times * FIRST_INTERVALS)
         where = layout(compiled, mesh)
-        for guess in guesses(compiled, mesh, where)[:most]:
+        for guess in islice(guesses(compiled, mesh, where), most):
             program = make_program(compiled, mesh, where, guess.z)
             pursuit.first = pursuit.first or program
             doubtful = {"ipopt.max_iter": DOUBTFUL_ITERATIONS} if End.INFEASIBLE in ends else {}
@@ -71,7 +72,7 @@ def begin(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Program, Minimum] | N
     if set(ends) == {End.UNDEFINED}:
         mesh = first_mesh(stretches)
         where = layout(compiled, mesh)
-        z = guesses(compiled, mesh, where)[0].z
+        z = first_guess(compiled, mesh, where).z
         pursuit.end, pursuit.findings = End.UNDEFINED, undefined_places(compiled, where, z)
         return None
     if End.UNBOUNDED in ends:

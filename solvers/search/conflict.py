@@ -12,7 +12,7 @@ from solvers.problem import Variation
 from solvers.search.attempt import FIRST_INTERVALS, SOLVED, end_of, first_mesh, make_program
 from solvers.search.effort import Minimiser
 from solvers.search.record import End, Pursuit
-from solvers.starts.guess import guesses
+from solvers.starts.guess import first_guess
 from solvers.starts.variations import variations
 from solvers.transcription.layout import layout
 from solvers.transcription.program import Program
@@ -38,7 +38,7 @@ def least_violation_of(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Program,
     best: tuple[Program, LeastViolation] | None = None
     for start in starts:
         varied = replace(compiled.lowered, problem=replace(pursuit.problem, start=start))
-        z = guesses(replace(compiled, lowered=varied), mesh, where)[0].z
+        z = first_guess(replace(compiled, lowered=varied), mesh, where).z
         program = make_program(compiled, mesh, where, z)
         found = program, minimise_.relax(program, z / program.scale)
         solved = found[1].minimum.outcome in SOLVED

@@ -22,7 +22,7 @@ from solvers.search.conflict import VIOLATED
 from solvers.search.effort import Minimiser
 from solvers.search.record import End, Pursuit
 from solvers.solution import Finding, Watch
-from solvers.starts.guess import guesses
+from solvers.starts.guess import first_guess
 from solvers.transcription.program import Program
 from solvers.transcription.trajectory import Trajectory
 
@@ -76,7 +76,7 @@ class _Search:
 
     def __init__(self, path: Trajectory, minimise_: Minimiser, deadline: Deadline) -> None:
         compiled, mesh, where = path.program.compiled, path.program.mesh, path.program.layout
-        self._program = make_program(compiled, mesh, where, guesses(compiled, mesh, where)[0].z)
+        self._program = make_program(compiled, mesh, where, first_guess(compiled, mesh, where).z)
         self._z = path.z / self._program.scale
         self._minimiser = Minimiser(minimise_.pursuit, minimise_.watch, deadline)
         self.every = {group.pointer for group in groups(path.program)}

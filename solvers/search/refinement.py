@@ -33,6 +33,8 @@ HALVED = float(np.log10(2.0))
 """How much faster coefficients fall per degree on half an interval."""
 LEAST_HALF = 5
 """Least degree of the halves of an interval that is smooth by itself."""
+NOISE = 1e-6
+"""An error of a control, relative to that of a state, below which the control tells nothing."""
 NARROWEST = 1e-11
 """Least width of an interval, relative to the whole."""
 END_DEGREE = 6
@@ -84,7 +86,7 @@ def estimate(path: Trajectory) -> Estimate:
             error = max(error, _tail(scaled[: (len(scaled) + 1) // 2, kept])[0])
         scaled[:, loose] = 0.0
         control_error, control_worst = _tail(scaled)
-        if scaled.shape[1]:
+        if control_error > NOISE * error:  # else its bends are those of its rounding
             bend = scaled[:, control_worst]
         if control_error > error:
             error, shape = control_error, bend

@@ -11,7 +11,7 @@ of the others and they are compared in their order.
 from __future__ import annotations
 
 import time
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -45,7 +45,7 @@ Solver = Callable[[Problem, Watch | None], Solution]
 
 
 def solve_from_starts(
-    problem: Problem, watch: Watch | None, solve_one: Solver, sizes: dict[str, float], together: Together = IN_TURN
+    problem: Problem, watch: Watch | None, solve_one: Solver, sizes: Mapping[str, float], together: Together = IN_TURN
 ) -> Solution:
     """The best of what several starts lead to, with all that was found.
 
@@ -96,7 +96,7 @@ def _compared(
     problem: Problem,
     made: Sequence[tuple[str, Solution]],
     broken: Sequence[str],
-    sizes: dict[str, float],
+    sizes: Mapping[str, float],
     seconds: float,
 ) -> Solution:
     """The best solution, told what the others are; `broken` are the starts that ended without one."""
@@ -189,7 +189,7 @@ class _Merit:
         return f"the value {value} ({verdict}, {count} start{'s' if count > 1 else ''})"
 
 
-def same(first: Solution, second: Solution, sizes: dict[str, float], tolerance: float) -> bool:
+def same(first: Solution, second: Solution, sizes: Mapping[str, float], tolerance: float) -> bool:
     """Whether two solutions are the same extremal, to their errors."""
     assert first.value is not None and second.value is not None and first.curve is not None and second.curve is not None
     errors = sum(e if e is not None else 0.01 * abs(first.value) for e in (first.value_error, second.value_error))
@@ -199,7 +199,7 @@ def same(first: Solution, second: Solution, sizes: dict[str, float], tolerance: 
     return distance(first.curve, second.curve, sizes) <= max(ALIKE, min(blur, 0.1))
 
 
-def distance(first: Curve, second: Curve, sizes: dict[str, float]) -> float:
+def distance(first: Curve, second: Curve, sizes: Mapping[str, float]) -> float:
     """The largest root mean square difference of an unknown, relative to its size; places go by shares of the range.
 
     Controls are left out where there are states: they may be undetermined where they do not matter.

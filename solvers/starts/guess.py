@@ -1,20 +1,21 @@
 """The first guess: straight lines through what is known, bent where that satisfies more of the problem.
 
-A line is all that the endpoint conditions say.  Where it is undefined (an integrand that is infinite on it) or breaks a
-constraint or an integral condition (a hose longer than the distance), a bend of low order is added to the unknowns,
-with the sign and the size that violate least.  Parameters of unknown size get the power of ten at which the dynamics
-fit the lines best.  What the user gives as a guess is kept as it is.
+A line, or a polynomial where slopes are known too, is all that the endpoint conditions say.  Where it is undefined (an
+integrand that is infinite on it) or breaks a constraint or an integral condition (a hose longer than the distance), a
+bend of low order is added to the unknowns, with the sign and the size that violate least.  Parameters of unknown size
+get the power of ten at which the dynamics fit the lines best.  What the user gives as a guess is kept as it is.
 """
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
+from types import MappingProxyType
 
 import numpy as np
 from numpy.typing import NDArray
 
-from solvers.problem import Parameter, Problem
+from solvers.problem import Parameter, Problem, Seek
 from solvers.starts.sketch import Bend, Sketch
 from solvers.transcription.evaluation import end_inputs, mapped, point_inputs, point_outputs
 from solvers.transcription.functions import Compiled
@@ -27,6 +28,13 @@ Array = NDArray[np.float64]
 
 BENDS = (*(Bend(size) for size in (0.1, -0.1, 0.3, -0.3, 1.0, -1.0)), Bend(0.3, 2), Bend(1.0, 2))
 """Bends that are tried."""
+NEAR = (-1.0, *(sign * 10.0 ** (k / 8) for k in (-2, -1, 1, 2) for sign in (1, -1)))
+"""Sizes that are tried beside that of the best of these, as factors."""
+
+SATISFIED, NEARLY = 1e-3, 0.1
+"""Violations as small as the first need no bend, nor do those as small as the second where a guess is given."""
+ALIKE = 1.1
+"""Violations that count as equal: within this factor."""
 
 POWERS = range(-8, 9)
 """Powers of ten that are tried for parameters of unknown size."""
@@ -34,15 +42,21 @@ POWERS = range(-8, 9)
 
 @dataclass(frozen=True, slots=True)
 class Guess:
-    """Values (SI) of all variables of a layout, and how much of the problem they violate (0: nothing)."""
+    """Values (SI) of all variables of a layout, how much of the problem they violate (0: nothing), and their value."""
 
     z: Array
     violation: float
-    bent: bool = False
+    value: float
+    bend: Bend
 
 
-def guesses(compiled: Compiled, mesh: Mesh, where: Layout) -> list[Guess]:
-    """Guesses on a mesh, best first."""
+def first_guess(compiled: Compiled, mesh: Mesh, where: Layout) -> Guess:
+    """The best guess on a mesh."""
+    return next(guesses(compiled, mesh, where))
+
+
+def guesses(compiled: Compiled, mesh: Mesh, where: Layout) -> Iterator[Guess]:
+    """Guesses on a mesh, best first; bends are drawn where they are asked for."""
     problem = compiled.lowered.problem
     parameters = np.array([first_value(p) for p in problem.parameters])
     places = _places(problem, constants_of(compiled), parameters, where)
@@ -51,20 +65,53 @@ def guesses(compiled: Compiled, mesh: Mesh, where: Layout) -> list[Guess]:
     _size_parameters(compiled, mesh, where, places, parameters)
     _vary_parameters(problem, places, parameters, where)
     sketch = Sketch(compiled, mesh, where, places, parameters)
-    found = _judged(compiled, where, [sketch.bent(Bend())])
-    if found[0].violation > 1e-3:
-        sizes = natural_sizes(compiled, mesh, where, found[0].z)
-        bent = _judged(compiled, where, [sketch.bent(bend, sizes) for bend in BENDS])
-        found += [replace(guess, bent=True) for guess in bent]
-    # A bend must be clearly better than none.
-    return sorted(found, key=lambda guess: guess.violation * (1.1 if guess.bent else 1.0))
+    (plain,) = _judged(compiled, where, sketch, [Bend()])
+    drawn = all(unknown.guess is not None for unknown in problem.unknowns)
+    varied = bool(problem.start.modes)  # a bend would undo what was asked for
+    if varied or plain.violation <= (NEARLY if drawn else SATISFIED):
+        yield plain
+        if plain.violation <= SATISFIED:
+            return
+    sizes = natural_sizes(compiled, mesh, where, plain.z)
+    bent = _judged(compiled, where, sketch, BENDS, sizes)
+    near = [replace(bend, size=factor * bend.size) for bend in _best_of_each(bent) for factor in NEAR]
+    found = sorted([plain, *bent, *_judged(compiled, where, sketch, near, sizes)], key=_rank)
+    yield from _with_best_value_first(found, problem.seek)
 
 
-def _judged(compiled: Compiled, where: Layout, sketches: Sequence[Array]) -> list[Guess]:
-    """Sketches with their integrals and what they violate; all are evaluated at once."""
+def _best_of_each(bent: Sequence[Guess]) -> list[Bend]:
+    """The bend that violates least for each number of half waves."""
+    counts = sorted({guess.bend.waves for guess in bent})
+    return [min((guess for guess in bent if guess.bend.waves == count), key=_rank).bend for count in counts]
+
+
+def _rank(guess: Guess) -> float:
+    """What a guess violates; a bend must be clearly better than none, and two half waves than one."""
+    return guess.violation * (ALIKE * guess.bend.waves if guess.bend.size else 1.0)
+
+
+def _with_best_value_first(found: list[Guess], seek: Seek) -> list[Guess]:
+    """Where a bend is best, the one with the best value of those that violate hardly more comes first: chains sag."""
+    if seek is Seek.STATIONARY or not found[0].bend.size:
+        return found
+    sign = -1.0 if seek is Seek.MAXIMUM else 1.0
+    most = ALIKE * _rank(found[0]) + SATISFIED
+    alike = [g for g in found if g.bend.size and _rank(g) <= most and np.isfinite(g.value)]
+    best = min(alike, key=lambda guess: sign * guess.value, default=found[0])
+    return [best, *(guess for guess in found if guess is not best)]
+
+
+def _judged(
+    compiled: Compiled,
+    where: Layout,
+    sketch: Sketch,
+    bends: Sequence[Bend],
+    sizes: Mapping[str, float] = MappingProxyType({}),
+) -> list[Guess]:
+    """Guesses with their integrals, what they violate and their values; all are evaluated at once."""
     point, constants = compiled.point, constants_of(compiled)
     first = point.states + point.constraints
-    curves = np.stack(sketches)
+    curves = np.stack([sketch.bent(bend, sizes) for bend in bends])
     outputs = mapped(point.value, *point_inputs(compiled, where, curves)).reshape(len(curves), -1, point.outputs)
     totals = where.measures @ outputs[:, :, first : first + point.integrals]
     curves[:, where.integrals] = np.where(np.isfinite(totals), totals, 0.0)
@@ -75,16 +122,24 @@ def _judged(compiled: Compiled, where: Layout, sketches: Sequence[Array]) -> lis
     ]).reshape(-1, len(curves))  # fmt: skip
     undefined = np.mean(~np.isfinite(outputs), axis=(1, 2)) + np.mean(~np.isfinite(ends), axis=1)
     violations = 1e3 * undefined + violated.sum(axis=0)
-    return [Guess(z, float(violation)) for z, violation in zip(curves, violations, strict=True)]
+    values = outputs[:, :, -1] @ where.measures + ends[:, -1]
+    return [
+        Guess(z, float(violation), float(value), bend)
+        for z, violation, value, bend in zip(curves, violations, values, bends, strict=True)
+    ]
 
 
 def _excess(values: Array, lower: float, upper: float) -> Array:
-    """The mean excess of rows of values beyond limits, relative to the sizes of both; undefined ones do not count."""
+    """The mean excess of rows of values beyond limits, relative to the sizes of both; undefined ones do not count.
+
+    Beyond limits of zero the size is that of all rows: else what is rounding and what is all wrong would count alike.
+    """
     defined = np.isfinite(values)
     known = np.where(defined, values, np.clip(0.0, lower, upper))
     excess = np.maximum(np.maximum(lower - known, known - upper), 0.0).sum(axis=1) / np.maximum(defined.sum(axis=1), 1)
     size = max((abs(limit) for limit in (lower, upper) if np.isfinite(limit)), default=0.0)
-    sizes = np.maximum(np.abs(np.where(defined, values, 0.0)).max(axis=1), size)
+    largest = np.abs(np.where(defined, values, 0.0)).max(axis=1)
+    sizes = np.maximum(largest, size) if size else np.full(len(values), largest.max())
     return np.asarray(excess / np.where(sizes > 0, sizes, 1.0))
 
 

@@ -146,6 +146,9 @@ def _lines(
             return None
         return np.asarray(np.interp(grid, [places[index] for index, _ in values], [value for _, value in values]))
 
+    smooth = _through_all(unknown, grid, places, known)
+    if smooth is not None:
+        return smooth
     rows = [np.full_like(grid, middle) if (first := line(0)) is None else first]
     for order in range(1, unknown.order + 1):
         own = line(order)
@@ -153,6 +156,38 @@ def _lines(
             own = np.gradient(rows[0], grid) if order == 1 else np.zeros_like(grid)
         rows.append(own)
     return rows
+
+
+MOST_KNOWN = 6
+"""Known values of an unknown and its derivatives up to which one polynomial through all of them stays calm."""
+
+
+def _through_all(
+    unknown: Unknown, grid: Array, places: Array, known: dict[Quantity, list[tuple[int, float]]]
+) -> list[Array] | None:
+    """The polynomial of least degree through the known values of an unknown and its derivatives, and its derivatives.
+
+    None where only values or too many are known, or where these do not determine it.
+    """
+    start, span = places[0], places[-1] - places[0]
+    given = [
+        (order, (places[index] - start) / span, value * span**order)
+        for order in range(unknown.order + 1)
+        for index, value in known.get((unknown.name, order), ())
+    ]
+    if len(given) > MOST_KNOWN or all(order == 0 for order, _, _ in given):
+        return None
+    powers = np.eye(len(given))
+    matrix = np.array(
+        [[polynomial.polyval(at, polynomial.polyder(p, order)) for p in powers] for order, at, _ in given]
+    )
+    if np.linalg.cond(matrix) > 1e6:
+        return None
+    shape = np.linalg.solve(matrix, [value for _, _, value in given])
+    share = (grid - start) / span
+    return [
+        polynomial.polyval(share, polynomial.polyder(shape, order)) / span**order for order in range(unknown.order + 1)
+    ]
 
 
 def _add(bend: Bend, rows: list[Array], fraction: Array, span: float, size: float, turn: int) -> None:

@@ -34,7 +34,7 @@ from solvers.search.attempt import SOLVED
 from solvers.search.effort import Minimiser
 from solvers.solution import Solution
 from solvers.solve import solve
-from solvers.starts.guess import guesses
+from solvers.starts.guess import first_guess
 from solvers.transcription.functions import compile_problem
 from solvers.transcription.layout import layout
 from solvers.transcription.lowering import lower
@@ -142,7 +142,7 @@ def last_program(name: str) -> Program:
 def from_first_guess(compiled, mesh) -> tuple[Program, Start]:
     """A program with the sizes and the start that our first guess gives on a mesh."""
     where = layout(compiled, mesh)
-    guess = guesses(compiled, mesh, where)[0]
+    guess = first_guess(compiled, mesh, where)
     scales = find_scales(compiled, where, guess.z)
     program = transcribe(compiled, mesh, where, scales, find_row_sizes(compiled, where, scales, guess.z))
     return program, Start(guess.z / program.scale)

@@ -15,7 +15,7 @@ import pytest
 from service.assemble import assemble
 from service.spec import read
 from solvers.minimise.ipopt import Start, minimise
-from solvers.starts.guess import guesses
+from solvers.starts.guess import first_guess
 from solvers.transcription.collocation import Family, scheme
 from solvers.transcription.functions import compile_problem
 from solvers.transcription.layout import layout
@@ -40,7 +40,7 @@ def seconds_to_first_iteration(intervals: int) -> float:
     compiled = compile_problem(lower(assemble(read(CRANE))))
     mesh = uniform(1, intervals, DEGREE, Family.RADAU)
     where = layout(compiled, mesh)
-    guess = guesses(compiled, mesh, where)[0]
+    guess = first_guess(compiled, mesh, where)
     scales = find_scales(compiled, where, guess.z)
     program = transcribe(compiled, mesh, where, scales, find_row_sizes(compiled, where, scales, guess.z))
     minimise(program, Start(guess.z / program.scale), watch=stop)

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from solvers.minimise.ipopt import Minimum, Outcome, Start, minimise
-from solvers.starts.guess import guesses
+from solvers.starts.guess import first_guess
 from solvers.transcription.collocation import Family
 from solvers.transcription.functions import compile_problem
 from solvers.transcription.layout import layout
@@ -84,7 +84,7 @@ def mixed_mesh(stretches=1):
 def start_of(problem, mesh):
     """The first guess (SI) on a mesh."""
     functions = compiled(problem)
-    return guesses(functions, mesh, layout(functions, mesh))[0].z
+    return first_guess(functions, mesh, layout(functions, mesh)).z
 
 
 def program_of(problem, mesh=None, z=None):

@@ -3,7 +3,7 @@
 import pytest
 
 from solvers.forms.steepness import steep_slopes
-from solvers.starts.guess import guesses
+from solvers.starts.guess import first_guess
 from solvers.transcription.layout import layout
 from solvers.transcription.mesh import uniform
 from solvers.transcription.scaling import find_scales
@@ -15,7 +15,7 @@ MESH = uniform(1, 8, 4)
 def steep(**members):
     problem = compiled(shape(**{"endpoints": ["y(0) = 1", "y(3) = 2"]} | members))
     where = layout(problem, MESH)
-    z = guesses(problem, MESH, where)[0].z
+    z = first_guess(problem, MESH, where).z
     return steep_slopes(problem, where, z, find_scales(problem, where, z).controls)
 
 

@@ -18,7 +18,7 @@ LEVEL = ["y(0) = 0", "y(3) = 0"]
 def looked_at(**members):
     problem = compiled(shape(**{"endpoints": LEVEL} | members))
     where = layout(problem, MESH)
-    return problem, where, next(guess.z for guess in guesses(problem, MESH, where) if not guess.bent)
+    return problem, where, next(guess.z for guess in guesses(problem, MESH, where) if not guess.bend.size)
 
 
 def sizes(**members):
