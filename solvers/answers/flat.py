@@ -54,7 +54,7 @@ def flat_directions(
         return ()
     sampler = Sampler(path)
     second = inertia.second_order(sampler)
-    if not np.isfinite(second.hessian.data).all():
+    if not second.hessian.finite:
         return ()
     directions = _directions(sampler, second)
     if not directions.shape[1]:
@@ -70,7 +70,7 @@ def _directions(sampler: Sampler, second: Second) -> Array:
     """
     columns = np.flatnonzero(~(second.fixed | second.resting))
     rows = np.flatnonzero(second.equalities | second.at_limit)
-    jacobian = inertia.normal(second.jacobian[rows][:, columns]).toarray()
+    jacobian = inertia.normal(second.jacobian.sparse()[rows][:, columns]).toarray()
     basis, triangle, _ = qr(jacobian.T, pivoting=True)
     kernel = basis[:, np.count_nonzero(np.abs(np.diag(triangle)) > 1e-11) :]
     size = np.zeros(len(sampler.path.z))
@@ -83,7 +83,7 @@ def _directions(sampler: Sampler, second: Second) -> Array:
     norm = reduced(_norm(sampler, second)[np.ix_(columns, columns)], kernel)
     norm += 1e-12 * np.trace(norm) / len(norm) * np.eye(len(norm))
     for hessian in (second.hessian, inertia.hessian_of_program(sampler)):
-        bend = reduced(hessian[columns][:, columns].toarray(), kernel)
+        bend = reduced(hessian.dense()[np.ix_(columns, columns)], kernel)
         values, vectors = eigh((bend + bend.T) / 2, norm)
         kernel = kernel @ vectors[:, np.abs(values) <= FLAT]
         norm = np.eye(kernel.shape[1])
@@ -97,7 +97,7 @@ def _directions(sampler: Sampler, second: Second) -> Array:
 def _norm(sampler: Sampler, second: Second) -> Array:
     """The mean square of states, controls and parameters relative to their sizes, times the size of the functional."""
     path, where = sampler.path, sampler.path.program.layout
-    norm = second.metric.toarray()
+    norm = second.metric.dense()
     share = np.abs(where.measures * where.lengths(path.places) / sampler.span)
     unit = sampler.value_size / abs(path.program.value_scale)
     scale = path.program.scale[where.controls] / sampler.control_sizes
@@ -111,7 +111,7 @@ def _that_keep_all(sampler: Sampler, second: Second, directions: Array, value_er
     z = sampler.path.z / program.scale
     rows = np.flatnonzero(second.equalities | second.at_limit)
     free = np.flatnonzero(~(second.fixed | second.resting))
-    back = pinv(second.jacobian[rows][:, free].toarray())
+    back = pinv(second.jacobian.dense()[np.ix_(rows, free)])
     before, numbers = program.numbers.value(z), program.numbers
     allowed = SAME * max(abs(before), 1e-3) + value_error / abs(program.value_scale)
     target = numbers.constraints(z)[rows]

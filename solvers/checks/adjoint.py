@@ -120,8 +120,7 @@ def continued(sampler: Sampler, places: Array) -> Continued:
     """The costates at local places of every interval."""
     count, n = sampler.count, sampler.point.states
     every = np.arange(count)
-    left = sampler.of(sampler.costates, every, np.zeros(count))
-    right = sampler.of(sampler.costates, every, np.ones(count))
+    left, right = sampler.costate_ends[:, 0], sampler.costate_ends[:, 1]
     joined = np.append(np.diff(sampler.stretch) == 0, False)  # the next interval belongs to the same stretch
     start = right.copy()
     start[joined] = left[1:][joined[:-1]]
@@ -133,8 +132,7 @@ def continued(sampler: Sampler, places: Array) -> Continued:
     sample = sampler.grid(steps.stages)
     slopes = sampler.slopes(sample)
     matrix = _rate_slopes(sampler, slopes, sample.interval).reshape(count, -1, n, n)
-    weights = sampler.weights(sample)
-    weights[:, :n] = 0.0
+    weights = sampler.weights(sample, costates=np.zeros(n))
     source = sampler.gradient(sample, slopes, weights)[:, :n].reshape(count, -1, n)
     values = integrate(steps, matrix, source, sampler.length, start, backwards=True)
     jumps = values[:, 0] - left
@@ -151,8 +149,8 @@ def continued(sampler: Sampler, places: Array) -> Continued:
     )
     lacking |= (weights == 0).any(axis=1)  # at a fixed end a costate is free: no jump can tell
     kept = (touched(sampler) & lacking) | ~np.isfinite(inside).all(axis=(1, 2))
-    stored = sampler.of(sampler.costates, np.repeat(every, len(places)), np.tile(places, count))
-    inside[kept] = stored.reshape(count, -1, n)[kept]
+    if kept.any():
+        inside[kept] = sampler.in_each(sampler.costates[kept], places).reshape(-1, len(places), n)
     return Continued(inside.reshape(-1, n), jumps, far, kept)
 
 

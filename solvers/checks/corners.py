@@ -57,9 +57,9 @@ def corners(sampler: Sampler) -> NDArray[np.int64]:
     if not sampler.point.controls or sampler.count < 2:
         return np.zeros(0, dtype=np.int64)
     inner = np.arange(1, sampler.count)
-    zeros, ones = np.zeros(len(inner)), np.ones(len(inner))
-    jump = np.abs(sampler.controls_at(inner, zeros) - sampler.controls_at(inner - 1, ones)) / sampler.control_sizes
-    leap = np.abs(sampler.of(sampler.costates, inner, zeros) - sampler.of(sampler.costates, inner - 1, ones))
+    controls, costates = sampler.control_ends, sampler.costate_ends
+    jump = np.abs(controls[1:, 0] - controls[:-1, 1]) / sampler.control_sizes
+    leap = np.abs(costates[1:, 0] - costates[:-1, 1])
     sizes = np.abs(sampler.continued.values).max(axis=0, initial=0.0)
     whole = np.all(leap <= SAME * np.where(sizes > 0, sizes, 1.0), axis=1)
     places = sampler.problem.places

@@ -66,7 +66,7 @@ def _decided(sampler: Sampler, deadline: Deadline, margin: float) -> Check:
     if program.layout.size > LARGEST:
         return Check(NAME, Status.NOT_APPLICABLE, f"The mesh has more than {LARGEST} unknowns; this was not tried.")
     second = inertia.second_order(sampler)
-    if not np.isfinite(second.hessian.data).all():
+    if not second.hessian.finite:
         return Check(NAME, Status.NOT_APPLICABLE, "The second variation is undefined somewhere along the curve.")
     strict = ~(second.fixed | second.pushed)
     rows = second.equalities | second.forced

@@ -14,7 +14,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-from solvers.checks.sampling import Sampler
+from solvers.checks.sampling import HALVES, Sampler
 from solvers.solution import Check, Status
 
 Array = NDArray[np.float64]
@@ -32,7 +32,7 @@ def check(sampler: Sampler) -> Check:
         findings.append((figure, float(place[0]), "Hamiltonian", f"The Hamiltonian is constant to {figure:.1e}."))
     cyclic = cyclic_states(sampler)
     if len(cyclic):
-        costates = sampler.of(sampler.costates, sampler.halves.interval, sampler.halves.local)[:, cyclic]
+        costates = sampler.in_each(sampler.costates[:, :, cyclic], HALVES)
         deviation, place = _deviation(sampler, costates)
         for k, state in enumerate(cyclic):
             figure = float(deviation[k] * sampler.state_extents[state] / sampler.value_size)

@@ -50,9 +50,7 @@ def _states(sampler: Sampler, slopes: Array) -> list[Finding]:
     path, n, count = sampler.path, sampler.point.states, sampler.count
     at_place = path.program.layout.at_place
     constants = constants_of(sampler.compiled)
-    every = np.arange(count)
-    left = sampler.of(sampler.costates, every, np.zeros(count))
-    right = sampler.of(sampler.costates, every, np.ones(count))
+    left, right = sampler.costate_ends[:, 0], sampler.costate_ends[:, 1]
     findings: list[Finding] = []
     for place, node in enumerate(at_place):
         for state in range(n):
@@ -83,8 +81,7 @@ def _numbers(sampler: Sampler, slopes: Array) -> list[Finding]:
     if not problem.parameters:
         return []
     sample = sampler.halves
-    gradient = sampler.gradient(sample, sampler.halves_slopes, sampler.weights(sample))
-    gradient *= sample.measure[:, None]
+    gradient = sampler.halves_gradient * sample.measure[:, None]
     stretch = sampler.stretch[sample.interval]
     places = len(problem.places)
     findings: list[Finding] = []

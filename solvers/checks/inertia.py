@@ -15,7 +15,10 @@ from numpy.typing import NDArray
 from scipy.linalg import eigh, qr
 from scipy.sparse.linalg import ArpackError, LinearOperator, eigsh, splu
 
+from solvers.checks import condensed
+from solvers.checks.condensed import SHARED
 from solvers.checks.sampling import Sampler
+from solvers.checks.scattered import Scattered, both_triangles
 from solvers.checks.variation import second_variation
 from solvers.deadline import FOREVER, Deadline
 from solvers.search.signals import SWITCH
@@ -32,7 +35,7 @@ PUSHED = 1e-6
 NOISE = 1e-9
 """Rounding error of the factors that leaves the margin trustworthy; entries of the Hessian are of the order of one."""
 FEW = 400
-"""Up to so many variables a full matrix is factorized sooner than a sparse one."""
+"""Up to so many variables full matrices are factorized sooner than sparse ones."""
 TOGETHER = 16
 """So many columns of the border are solved for at once."""
 SWEEPS = 4
@@ -47,9 +50,9 @@ OFF = 1e-10
 class Second:
     """The second-order problem of a solved mesh: all scaled as the program is."""
 
-    hessian: sp.csc_matrix
-    jacobian: sp.csr_matrix
-    metric: sp.csc_matrix  # dz' metric dz is the mean square of a variation, times the size of the functional
+    hessian: Scattered
+    jacobian: Scattered
+    metric: Scattered  # dz' metric dz is the mean square of a variation, times the size of the functional
     fixed: Flags
     resting: Flags  # on a bound
     pushed: Flags  # and held there by a multiplier
@@ -58,6 +61,7 @@ class Second:
     forced: Flags
     long: Flags  # rows that couple the whole curve
     border: Flags  # variables that do, and those of the last interval
+    owner: Indices  # the interval inside of which each variable is, or `SHARED`
 
 
 @dataclass(frozen=True, slots=True)
@@ -78,14 +82,15 @@ def second_order(sampler: Sampler) -> Second:
     multipliers = path.row_multipliers * program.row_scale / size
     bounds = path.bound_multipliers * program.scale / size
     hessian, metric = second_variation(sampler)
-    jacobian = numbers.jacobian_pattern.filled(numbers.jacobian(z))
+    pattern, nonzeros = numbers.jacobian_pattern, numbers.jacobian(z)
+    jacobian = Scattered(pattern.shape, pattern.rows, pattern.columns(), nonzeros)
     values = numbers.constraints(z)
     share = sampler.value_size / size
     weight = where.measures * np.abs((path.places[where.stretch + 1] - path.places[where.stretch]) / sampler.span)
     fixed = program.lower == program.upper
     held = np.zeros(where.size, bool)
     held[where.controls] = fixed[where.controls]  # arcs on a bound: not given, so they have to be pushed against it
-    pull = -(numbers.gradient(z) + jacobian.T @ multipliers)
+    pull = -(numbers.gradient(z) + pattern.times_from_left(multipliers, nonzeros))
     bounds = np.where(held, pull, bounds)
     fixed &= ~held
     fixed[smooth_junctions(sampler)] = True
@@ -106,8 +111,12 @@ def second_order(sampler: Sampler) -> Second:
     border[where.nodes[-2].min(initial=where.size) :] = True  # the last interval, places, parameters, integrals
     if not sampler.point.states:
         border[where.controls[where.first[-2], 0] :] = True
-    return Second(hessian, jacobian.tocsr(), metric, fixed, resting, pushed, equalities, at_limit, forced,
-                  long, border)  # fmt: skip
+    owner = np.full(where.size, SHARED)
+    interval = np.repeat(np.arange(sampler.count), np.diff(where.first))[:, None]
+    owner[where.inner] = owner[where.controls] = interval
+    owner[where.nodes] = SHARED
+    return Second(hessian, jacobian, metric, fixed, resting, pushed, equalities, at_limit, forced,
+                  long, border, owner)  # fmt: skip
 
 
 SMOOTH = 1e-3
@@ -126,20 +135,19 @@ def smooth_junctions(sampler: Sampler) -> Indices:
         names = [parameter.name for parameter in problem.parameters]
         if not place.label.startswith(SWITCH + " ") or place.label not in names:
             continue
-        ends = np.array([node - 1, node]), np.array([1.0, 0.0])
-        jump = np.abs(np.diff(sampler.controls_at(*ends), axis=0)) / sampler.control_sizes
+        jump = np.abs(sampler.control_ends[node, 0] - sampler.control_ends[node - 1, 1]) / sampler.control_sizes
         if jump.max(initial=0.0) <= SMOOTH:
             found.append(where.parameters[names.index(place.label)])
     return np.array(found, dtype=np.int64)
 
 
-def hessian_of_program(sampler: Sampler) -> sp.csc_matrix:
+def hessian_of_program(sampler: Sampler) -> Scattered:
     """The second derivatives of the program's own Lagrangian, whose quadrature is at the collocation points."""
     path, program = sampler.path, sampler.path.program
     multipliers = path.row_multipliers * program.row_scale / abs(program.value_scale)
-    numbers = program.numbers
-    upper = numbers.hessian_pattern.filled(numbers.hessian(path.z / program.scale, 1.0, multipliers))
-    return (upper + sp.triu(upper, 1).T).tocsc()
+    pattern, numbers = program.numbers.hessian_pattern, program.numbers
+    upper = numbers.hessian(path.z / program.scale, 1.0, multipliers)
+    return both_triangles(Scattered(pattern.shape, pattern.rows, pattern.columns(), upper))
 
 
 def _pushed_throughout(sampler: Sampler, resting: Flags, bounds: Array, least: Array) -> Flags:
@@ -169,10 +177,13 @@ def count_negative(
         return Count(0, None)
     if deadline.over:
         raise TimeoutError
-    if len(columns) <= FEW and _positive(second, columns, np.flatnonzero(rows), shift):
-        return Count(0, None)
-    local, coupling = normal(second.jacobian[near][:, columns]), normal(second.jacobian[far][:, columns])
-    hessian = second.hessian[columns][:, columns] + shift * second.metric[columns][:, columns]
+    if len(columns) <= FEW:
+        counted = _condensed(second, free, rows, shift)
+        if counted is not None and (counted <= 0 or shift < 0):  # only one that stands against the margin has to prove
+            return Count(max(counted, 0), None)
+    jacobian, form, metric = second.jacobian.sparse(), second.hessian.sparse(), second.metric.sparse()
+    local, coupling = normal(jacobian[near][:, columns]), normal(jacobian[far][:, columns])
+    hessian = form[columns][:, columns] + shift * metric[columns][:, columns]
     penalized = (hessian + local.T @ local / PENALTY).tocsc()
     whole = sp.bmat([[penalized, coupling.T], [coupling, -PENALTY * sp.eye(coupling.shape[0])]], format="csc")
     size = len(inside)
@@ -189,7 +200,7 @@ def count_negative(
         moved[:, few] = solve(side[:, few])
     rest = corner - side.T @ moved  # Schur complement of the band
     negative += int((np.linalg.eigvalsh((rest + rest.T) / 2) < 0).sum()) - coupling.shape[0]
-    if negative <= 0 or shift < 0:  # only a count that stands against the margin needs its direction
+    if negative <= 0 or shift < 0:
         return Count(max(negative, 0), None)
 
     def inverse(vector: Array) -> Array:
@@ -212,19 +223,11 @@ def count_negative(
     return Count(negative, None if vectors is None or not vectors.size else vectors[: len(columns)])
 
 
-def _positive(second: Second, columns: Indices, rows: Indices, shift: float) -> bool:
-    """Whether the form with its penalty is proved positive by a Cholesky factor of the whole: few numbers are sooner
-    multiplied than looked for."""
-    jacobian = second.jacobian.toarray()[np.ix_(rows, columns)]
-    length = np.sqrt(np.einsum("ij,ij->i", jacobian, jacobian))
-    jacobian = jacobian[length > 1e-14] / length[length > 1e-14, None]
-    form = (second.hessian + shift * second.metric).toarray()[np.ix_(columns, columns)]
-    whole = (form + form.T) / 2 + jacobian.T @ jacobian / PENALTY
-    try:
-        factor = np.linalg.cholesky(whole)
-    except np.linalg.LinAlgError:
-        return False
-    return bool(np.abs(factor @ factor.T - whole).max() < NOISE)
+def _condensed(second: Second, free: Flags, rows: Flags, shift: float) -> int | None:
+    """The count in full matrices: few numbers are sooner multiplied than looked for."""
+    form = second.hessian.dense() + shift * second.metric.dense()
+    owner = np.where(free, second.owner, condensed.FIXED)
+    return condensed.count_negative(form, second.jacobian.dense()[rows], owner, PENALTY, NOISE)
 
 
 def _factorized(band: sp.csc_matrix) -> tuple[Callable[[Array], Array] | None, int]:
@@ -254,13 +257,13 @@ def normal(jacobian: sp.csr_matrix) -> sp.csr_matrix:
 def least_quotient(second: Second, free: Flags, rows: Flags) -> float:
     """The least second variation relative to the mean square of a variation, on the exact kernel of the rows."""
     columns = np.flatnonzero(free)
-    jacobian = normal(second.jacobian[np.flatnonzero(rows)][:, columns]).toarray()
+    jacobian = normal(second.jacobian.sparse()[np.flatnonzero(rows)][:, columns]).toarray()
     basis, triangle, _ = qr(jacobian.T, pivoting=True)
     kernel = basis[:, np.count_nonzero(np.abs(np.diag(triangle)) > 1e-11) :]
     if not kernel.shape[1]:
         return np.inf
-    bend = kernel.T @ (second.hessian[columns][:, columns] @ kernel)
-    size = kernel.T @ (second.metric[columns][:, columns] @ kernel)
+    bend = kernel.T @ (second.hessian.sparse()[columns][:, columns] @ kernel)
+    size = kernel.T @ (second.metric.sparse()[columns][:, columns] @ kernel)
     size += 1e-12 * np.trace(size) / len(size) * np.eye(len(size))
     return float(eigh(bend, size, eigvals_only=True, subset_by_index=[0, 0])[0])
 
@@ -271,7 +274,7 @@ def proved(second: Second, free: Flags, rows: Flags, direction: Array) -> float:
     Zero where it cannot be put there: a direction that breaks them shows nothing.
     """
     columns = np.concatenate([np.flatnonzero(free & ~second.border), np.flatnonzero(free & second.border)])
-    jacobian = normal(second.jacobian[np.flatnonzero(rows)][:, columns])
+    jacobian = normal(second.jacobian.sparse()[np.flatnonzero(rows)][:, columns])
     size, count = jacobian.shape[1], jacobian.shape[0]
     system = sp.bmat([[sp.eye(size), jacobian.T], [jacobian, -REPEATED * sp.eye(count)]], format="csc")
     try:
@@ -282,6 +285,6 @@ def proved(second: Second, free: Flags, rows: Flags, direction: Array) -> float:
         direction = direction - solve(np.concatenate([np.zeros(size), jacobian @ direction]))[:size]
     if not np.linalg.norm(jacobian @ direction) <= OFF * np.linalg.norm(direction):
         return 0.0
-    bend = float(direction @ (second.hessian[columns][:, columns] @ direction))
-    size = float(direction @ (second.metric[columns][:, columns] @ direction))
+    bend = float(direction @ (second.hessian.sparse()[columns][:, columns] @ direction))
+    size = float(direction @ (second.metric.sparse()[columns][:, columns] @ direction))
     return bend / size if size > 0 else 0.0

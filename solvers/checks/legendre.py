@@ -15,7 +15,6 @@ from numpy.typing import NDArray
 
 from solvers.checks.sampling import Sampler
 from solvers.solution import Check, Status
-from solvers.transcription.evaluation import mapped
 from solvers.transcription.limits import constants_of, interval_of
 
 Array = NDArray[np.float64]
@@ -58,7 +57,7 @@ def least_eigenvalues(sampler: Sampler) -> tuple[Array, Flags]:
     """On the grid of halves: the least relative eigenvalue of H_uu on what is free, and whether anything is free."""
     n, m = sampler.point.states, sampler.point.controls
     sample, sizes = sampler.halves, sampler.control_sizes
-    numbers = mapped(sampler.point.hessian, sample.v, sample.d, sampler.weights(sample))
+    numbers = sampler.halves_bends
     bends = np.zeros((len(sample.local), m, m))
     for entry, (row, column) in enumerate(
         zip(sampler.point.hessian_rows, sampler.point.hessian_columns, strict=True)

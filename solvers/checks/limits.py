@@ -45,11 +45,14 @@ class Body:
 def check(sampler: Sampler) -> Check:
     """The largest violation relative to the size of the body, against ten times the tolerance."""
     threshold = 10 * sampler.tolerance
+    states_bounded = any(np.isfinite(bound).any() for bound in sampler.bounds[:2])
+    if not states_bounded and sampler.point.constraints == len(sampler.compiled.lowered.equalities):
+        if any(np.isfinite(bound).any() for bound in sampler.bounds[2:]):
+            return Check(NAME, Status.PASSED, "Controls are kept inside their bounds everywhere.", 0.0, threshold)
+        return Check(NAME, Status.NOT_APPLICABLE, "There are no bounds and no pointwise constraints.")
     sample = fine_grid(sampler)
     worst: tuple[float, float | None, str] = (0.0, None, "")
-    found = False
     for body in bodies(sampler, sample):
-        found = True
         outside = body.violation()
         if body.jumps:
             outside = outside * np.abs(sampler.length / sampler.span)[sample.interval]
@@ -61,10 +64,6 @@ def check(sampler: Sampler) -> Check:
             figure, place = float(outside[index]), float(sample.places[index])
         if figure > worst[0]:
             worst = (figure, place, body.label)
-    if not found:
-        if any(np.isfinite(bound).any() for bound in sampler.bounds):
-            return Check(NAME, Status.PASSED, "Controls are kept inside their bounds everywhere.", 0.0, threshold)
-        return Check(NAME, Status.NOT_APPLICABLE, "There are no bounds and no pointwise constraints.")
     largest, at, subject = worst
     if largest == 0:
         sentence = f"Every limit holds at all {len(sample.places)} places looked at."

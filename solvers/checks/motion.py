@@ -17,7 +17,7 @@ import numpy as np
 from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
-from solvers.checks.sampling import HALF_WEIGHTS, Sampler
+from solvers.checks.sampling import HALF_WEIGHTS, HALVES, Sampler
 from solvers.deadline import FOREVER, Deadline
 from solvers.solution import Check, Status
 from solvers.transcription.evaluation import mapped
@@ -95,7 +95,7 @@ def _defects(sampler: Sampler) -> Array:
     """
     n, sample = sampler.point.states, sampler.halves
     modes = np.asarray(legendre.legder(sampler.states, axis=1), dtype=np.float64) * 2
-    slopes = sampler.of(modes, sample.interval, sample.local)
+    slopes = sampler.in_each(modes, HALVES)
     rates = sampler.halves_outputs[:, :n] * sampler.width[sample.interval, None]
     gaps = np.abs(slopes - rates) / sampler.state_sizes
     gaps = np.where(np.isfinite(gaps), gaps, np.inf).reshape(sampler.count, -1, n)
@@ -111,15 +111,19 @@ def _advanced(sampler: Sampler, intervals: Indices, steps: int) -> tuple[Array, 
     state: Array = sampler.path.nodes[intervals].copy()
     error = np.zeros_like(state)
     owner, width = np.tile(intervals, rows), np.repeat(1 / (steps * PARTS), count)
+    parts = range(1, int(PARTS[-1]))
+    open_ = [np.flatnonzero(np.repeat(part < PARTS, count)) for part in parts]
+    visited = [intervals, *(owner[own] for own in open_)]  # all subdivisions take the same first slope
+    local = np.concatenate([np.zeros(count), *(part * width[own] for part, own in zip(parts, open_, strict=True))])
+    turns = [slice(*pair) for pair in pairwise(np.cumsum([0, *map(len, visited)]))]
     with np.errstate(all="ignore"):
         for step in range(steps):
-            first = _rates(sampler, intervals, state, np.full(count, step / steps))
+            rates = _Rates(sampler, np.concatenate(visited), step / steps + local)
             before = np.tile(state, (rows, 1))
-            now = before + width[:, None] * np.tile(first, (rows, 1))
-            for part in range(1, int(PARTS[-1])):
-                open_ = np.flatnonzero(np.repeat(part < PARTS, count))
-                slope = _rates(sampler, owner[open_], now[open_], step / steps + part * width[open_])
-                before[open_], now[open_] = now[open_], before[open_] + 2 * width[open_, None] * slope
+            now = before + width[:, None] * np.tile(rates(state, turns[0]), (rows, 1))
+            for own, turn in zip(open_, turns[1:], strict=True):
+                slope = rates(now[own], turn)
+                before[own], now[own] = now[own], before[own] + 2 * width[own, None] * slope
             table = list(now.reshape(rows, count, -1))
             for column in range(1, rows):
                 coarse = table[-1]
@@ -130,13 +134,20 @@ def _advanced(sampler: Sampler, intervals: Indices, steps: int) -> tuple[Array, 
     return state, error
 
 
-def _rates(sampler: Sampler, intervals: Indices, states: Array, local: Array) -> Array:
-    """Slopes of the states in the local variable."""
-    controls = sampler.controls_at(intervals, local)
-    v = sampler.inputs(intervals, states, controls)
-    d = sampler.data(sampler.fraction[intervals] + sampler.width[intervals] * local)
-    rates = mapped(sampler.point.value, v, d)[:, : sampler.point.states]
-    return np.asarray(rates * sampler.width[intervals, None])
+class _Rates:
+    """Slopes in the local variable of any states at places that are known beforehand, some of them at a time."""
+
+    def __init__(self, sampler: Sampler, intervals: Indices, local: Array) -> None:
+        n = sampler.point.states
+        self._function, self._n = sampler.point.value, n
+        self._v = sampler.inputs(intervals, np.zeros((len(intervals), n)), sampler.controls_at(intervals, local))
+        self._d = sampler.data(intervals, local)
+        self._width = sampler.width[intervals, None]
+
+    def __call__(self, states: Array, turn: slice) -> Array:
+        v = self._v[turn]
+        v[:, : self._n] = states
+        return np.asarray(mapped(self._function, v, self._d[turn])[:, : self._n] * self._width[turn])
 
 
 def _stiff(sampler: Sampler, interval: int, accuracy: float, deadline: Deadline) -> Array | None:
@@ -148,7 +159,7 @@ def _stiff(sampler: Sampler, interval: int, accuracy: float, deadline: Deadline)
     def slope(local: float, state: Array) -> Array:
         if deadline.over:
             raise TimeoutError
-        return np.asarray(_rates(sampler, chosen, state[None, :], np.array([local]))[0])
+        return np.asarray(_Rates(sampler, chosen, np.array([local]))(state, slice(None))[0])
 
     try:
         answer = solve_ivp(slope, (0.0, 1.0), sampler.path.nodes[interval], method="LSODA", rtol=max(accuracy, 1e-12),

@@ -73,35 +73,58 @@ class Sampler:
 
     def sample(self, interval: Indices, local: Array, measure: Array | None = None) -> Sample:
         """The curve at local places (0 to 1) of intervals."""
-        v = self.inputs(interval, self.of(self.states, interval, local), self.controls_at(interval, local))
-        fraction = self.fraction[interval] + self.width[interval] * local
-        d = self.data(fraction)
-        places = self.start[interval] + fraction * (self.end[interval] - self.start[interval])
-        return Sample(interval, local, places, v, d, np.zeros(len(local)) if measure is None else measure)
+        states, controls = self.of(self.states, interval, local), self.controls_at(interval, local)
+        return self._sample(interval, local, states, controls, measure)
 
     def grid(self, local: Array, weights: Array | None = None) -> Sample:
         """The same local places in every interval; `weights` integrate from 0 to 1."""
         interval = np.repeat(np.arange(self.count), len(local))
         measure = None if weights is None else np.tile(weights, self.count) * self.length[interval]
-        return self.sample(interval, np.tile(local, self.count), measure)
+        states, controls = self.in_each(self.states, local), self._bounded(self.in_each(self.controls, local))
+        return self._sample(interval, np.tile(local, self.count), states, controls, measure)
+
+    def _sample(self, interval: Indices, local: Array, states: Array, controls: Array, measure: Array | None) -> Sample:
+        v, d = self.inputs(interval, states, controls), self.data(interval, local)
+        start, end = v[:, self._ends].T
+        places = start + d[:, 0] * (end - start)
+        return Sample(interval, local, places, v, d, np.zeros(len(local)) if measure is None else measure)
 
     def of(self, modes: Array, interval: Indices, local: Array) -> Array:
         """Piecewise polynomials at local places (P x components)."""
         shapes = basis(2 * local - 1, modes.shape[1] - 1)
-        return np.asarray(np.einsum("pd,pdi->pi", shapes, modes[interval]))
+        return np.asarray((shapes[:, None] @ modes[interval])[:, 0])
+
+    def in_each(self, modes: Array, local: Array) -> Array:
+        """Piecewise polynomials at the same local places of every interval (P x components)."""
+        shapes = basis(2 * local - 1, modes.shape[1] - 1)
+        return np.asarray((shapes @ modes).reshape(len(modes) * len(local), modes.shape[2]))
 
     def controls_at(self, interval: Indices, local: Array) -> Array:
         """The controls that are handed over: inside their constant bounds."""
-        return np.clip(self.of(self.controls, interval, local), self.bounds[2], self.bounds[3])
+        return self._bounded(self.of(self.controls, interval, local))
+
+    def _bounded(self, controls: Array) -> Array:
+        return np.asarray(np.minimum(np.maximum(controls, self.bounds[2]), self.bounds[3]))
+
+    @property
+    def _ends(self) -> slice:
+        """Where the ends of the stretch stand among the inputs."""
+        first = self.point.states + self.point.controls
+        return slice(first, first + 2)
 
     def inputs(self, interval: Indices, states: Array, controls: Array) -> Array:
         """The inputs v of the point function."""
-        ends = np.column_stack([self.start[interval], self.end[interval]])
-        return np.hstack([states, controls, ends, np.tile(self.path.parameters, (len(states), 1))])
+        n, ends = self.point.states, self._ends
+        v = np.empty((len(interval), self.point.inputs))
+        v[:, :n], v[:, n : ends.start], v[:, ends.stop :] = states, controls, self.path.parameters
+        v[:, ends.start], v[:, ends.start + 1] = self.start[interval], self.end[interval]
+        return v
 
-    def data(self, fraction: Array) -> Array:
+    def data(self, interval: Indices, local: Array) -> Array:
         """The inputs d of the point function."""
-        return np.hstack([fraction[:, None], np.tile(self.constants, (len(fraction), 1))])
+        d = np.empty((len(interval), 1 + len(self.constants)))
+        d[:, 0], d[:, 1:] = self.fraction[interval] + self.width[interval] * local, self.constants
+        return d
 
     def outputs(self, sample: Sample) -> Array:
         """All outputs of the point function, per fraction of the stretch where they are rates or integrands."""
@@ -126,28 +149,62 @@ class Sampler:
         """The Jacobian's nonzeros on that grid."""
         return self.slopes(self.halves)
 
-    def weights(self, sample: Sample, *, constraints: bool = True) -> Array:
-        """What each output counts in the Hamiltonian per fraction: costates, multipliers, sign of the integrand."""
-        weights = np.zeros((len(sample.local), self.point.outputs))
+    @cached_property
+    def halves_weights(self) -> Array:
+        """What each output counts in the Hamiltonian on that grid, the costates integrated anew."""
+        return self._counted(self.halves, self.continued.values)
+
+    @cached_property
+    def halves_gradient(self) -> Array:
+        """The derivatives of the outputs that count so on that grid."""
+        return self.gradient(self.halves, self.halves_slopes, self.halves_weights)
+
+    @cached_property
+    def halves_bends(self) -> Array:
+        """The nonzeros of the second derivatives of the outputs that count so on that grid."""
+        return mapped(self.point.hessian, self.halves.v, self.halves.d, self.halves_weights)
+
+    def weights(self, sample: Sample, *, constraints: bool = True, costates: Array | None = None) -> Array:
+        """What each output counts in the Hamiltonian per fraction: costates, multipliers, sign of the integrand.
+
+        Where no `costates` are given they are, on the grid of halves, integrated anew, and elsewhere as stored.
+        """
+        if costates is not None:
+            weights = self._counted(sample, costates)
+        elif sample is self.halves:
+            weights = self.halves_weights.copy()
+        else:
+            weights = self._counted(sample, self.of(self.costates, sample.interval, sample.local))
+        if not constraints:
+            weights[:, self.point.states : self.point.states + self.point.constraints] = 0.0
+        return weights
+
+    def _counted(self, sample: Sample, costates: Array) -> Array:
         n, c = self.point.states, self.point.constraints
-        weights[:, :n] = self.costates_at(sample)
-        if constraints and c:
+        weights = np.empty((len(sample.local), self.point.outputs))
+        weights[:, :n] = costates
+        if c:
             density = self.of(self.path.multiplier_modes, sample.interval, sample.local)
             weights[:, n : n + c] = density * (self.end - self.start)[sample.interval, None]
         weights[:, n + c : -1] = -self.path.row_multipliers[self._integral_rows]
         weights[:, -1] = self.sign
         return weights
 
-    def costates_at(self, sample: Sample) -> Array:
-        """The costates: on the grid of halves integrated anew, elsewhere as stored."""
-        if sample is self.halves:
-            return self.continued.values
-        return self.of(self.costates, sample.interval, sample.local)
-
     @cached_property
     def continued(self) -> Continued:
         """The costates on the grid of halves, integrated anew from the nodes."""
         return continued(self, HALVES)
+
+    @cached_property
+    def control_ends(self) -> Array:
+        """The controls at both ends of every interval (N x 2 x m)."""
+        controls = self._bounded(self.in_each(self.controls, np.array([0.0, 1.0])))
+        return controls.reshape(self.count, 2, self.point.controls)
+
+    @cached_property
+    def costate_ends(self) -> Array:
+        """The stored costates at both ends of every interval (N x 2 x n)."""
+        return self.in_each(self.costates, np.array([0.0, 1.0])).reshape(self.count, 2, self.point.states)
 
     @cached_property
     def fixed_ends(self) -> list[tuple[bool, bool]]:

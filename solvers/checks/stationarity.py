@@ -25,7 +25,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from solvers.checks.adjoint import variation
-from solvers.checks.sampling import Sampler
+from solvers.checks.sampling import HALVES, Sampler
 from solvers.solution import Check, Status
 from solvers.transcription.collocation import Family
 from solvers.transcription.evaluation import mapped
@@ -102,8 +102,7 @@ def _gain(sampler: Sampler, threshold: float) -> list[Finding]:
 def slopes_of_hamiltonian(sampler: Sampler) -> Array:
     """H_u on the grid of halves, scaled: the relative change of H by a change of each control as large as itself."""
     n, m = sampler.point.states, sampler.point.controls
-    gradient = sampler.gradient(sampler.halves, sampler.halves_slopes, sampler.weights(sampler.halves))
-    return gradient[:, n : n + m] * sampler.control_sizes / sampler.power
+    return sampler.halves_gradient[:, n : n + m] * sampler.control_sizes / sampler.power
 
 
 def control_steps(sampler: Sampler) -> Array:
@@ -142,13 +141,10 @@ def _costates(sampler: Sampler) -> list[Finding]:
 def _weak_residuals(sampler: Sampler) -> Array:
     """The weak form of the costate equations on every interval, with the stored costates (N x n)."""
     n, sample, count = sampler.point.states, sampler.halves, sampler.count
-    costates = sampler.of(sampler.costates, sample.interval, sample.local)
-    weights = sampler.weights(sample, constraints=False)
-    weights[:, :n] = costates
+    costates = sampler.in_each(sampler.costates, HALVES)
+    weights = sampler.weights(sample, constraints=False, costates=costates)
     gradient = sampler.gradient(sample, sampler.halves_slopes, weights)
-    every = np.arange(count)
-    left = sampler.of(sampler.costates, every, np.zeros(count))
-    right = sampler.of(sampler.costates, every, np.ones(count))
+    left, right = sampler.costate_ends[:, 0], sampler.costate_ends[:, 1].copy()
     before_place = np.append(np.diff(sampler.stretch) > 0, True)
     right[:-1] = np.where(before_place[:-1, None], right[:-1], left[1:])
     edges = (sampler.path.breaks - sampler.path.breaks[0]) / sampler.span
@@ -209,12 +205,12 @@ def _before_places(sampler: Sampler, ending: NDArray[np.int64], total: Array) ->
     total = total - given
     left = np.zeros((len(ending), n))
     inner = nodes < sampler.count
-    left[inner] = sampler.of(sampler.costates, nodes[inner], np.zeros(np.count_nonzero(inner)))
-    right = sampler.of(sampler.costates, ending, np.ones(len(ending)))
+    left[inner] = sampler.costate_ends[nodes[inner], 0]
+    right = sampler.costate_ends[ending, 1]
     place = np.searchsorted(path.program.layout.at_place, nodes)
     conditions = sampler.end_slopes[1][: len(path.places) * n].reshape(-1, n)[place]
     part = total + given + left - right + conditions
-    return np.clip(part, np.minimum(total, 0.0), np.maximum(total, 0.0))
+    return np.asarray(np.clip(part, np.minimum(total, 0.0), np.maximum(total, 0.0)))
 
 
 def _multipliers(sampler: Sampler) -> list[Finding]:

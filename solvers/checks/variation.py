@@ -7,46 +7,57 @@ notice it) counts for what it is.
 
 from __future__ import annotations
 
+from functools import lru_cache
+
 import numpy as np
-import scipy.sparse as sp
 from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
-from solvers.checks.sampling import HALF_WEIGHTS, HALVES, Sample, Sampler
+from solvers.checks.sampling import HALF_WEIGHTS, HALVES, Sampler
+from solvers.checks.scattered import Scattered
 from solvers.series import basis
+from solvers.transcription.collocation import Family, scheme
 from solvers.transcription.evaluation import mapped
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]
 
 
-def second_variation(sampler: Sampler) -> tuple[sp.csc_matrix, sp.csc_matrix]:
+def second_variation(sampler: Sampler) -> tuple[Scattered, Scattered]:
     """The second variation, and the mean square of a variation of the states times the size of the functional.
 
     Both for scaled variables and relative to the program's scale of the value.  Where there are no states the controls'
     mean square is taken.
     """
-    program, where = sampler.path.program, sampler.path.program.layout
+    program, where, point = sampler.path.program, sampler.path.program.layout, sampler.point
     rows, columns, forms, norms = [], [], [], []
     for group in program.mesh.alike:
-        members, scheme = group.members, group.scheme
-        local, weights = grid_for(scheme.degree)
-        sample = _sample(sampler, members, local)
-        trial = _trial(sampler, scheme.state_modes, scheme.control_modes, local)
-        own = _local(sampler, members, scheme.degree)
+        members, degree = group.members, group.scheme.degree
+        local, weights = grid_for(degree)
+        trial = _trial(group.scheme.family, degree, point.states, point.controls, len(where.parameters))
+        own = _local(sampler, members, degree)
         block = (len(members), own.shape[1], own.shape[1])
         rows.append(np.broadcast_to(own[:, :, None], block).ravel())
         columns.append(np.broadcast_to(own[:, None, :], block).ravel())
-        forms.append(_condensed(trial, _bends(sampler, sample, weights)).ravel())
+        forms.append(_condensed(trial, _bends(sampler, members, local, weights)).ravel())
         norms.append(_squares(sampler, members, trial, weights).ravel())
     row, column = np.concatenate(rows), np.concatenate(columns)
     scale = program.scale[row] * program.scale[column] / abs(program.value_scale)
-    shape = (where.size, where.size)
-    hessian = sp.coo_matrix((np.concatenate(forms) * scale, (row, column)), shape=shape)
-    metric = sp.coo_matrix((np.concatenate(norms) * scale, (row, column)), shape=shape)
-    numbers = np.zeros(where.size)
-    numbers[where.parameters] = sampler.value_size / abs(program.value_scale)
-    return (hessian + _at_places(sampler)).tocsc(), (metric + sp.diags(numbers)).tocsc()
+    at_places, shape = _at_places(sampler), (where.size, where.size)
+    hessian = Scattered(
+        shape,
+        np.concatenate([row, at_places.rows]),
+        np.concatenate([column, at_places.columns]),
+        np.concatenate([np.concatenate(forms) * scale, at_places.values]),
+    )
+    numbers = np.full(len(where.parameters), sampler.value_size / abs(program.value_scale))
+    metric = Scattered(
+        shape,
+        np.concatenate([row, where.parameters]),
+        np.concatenate([column, where.parameters]),
+        np.concatenate([np.concatenate(norms) * scale, numbers]),
+    )
+    return hessian, metric
 
 
 def grid_for(degree: int) -> tuple[Array, Array]:
@@ -58,26 +69,20 @@ def grid_for(degree: int) -> tuple[Array, Array]:
     return np.concatenate([(nodes + 1) / 4, (nodes + 3) / 4]), np.concatenate([weights, weights]) / 4
 
 
-def _sample(sampler: Sampler, members: Indices, local: Array) -> tuple[Sample, Array]:
-    """The curve on a grid of some intervals, with what each output counts there."""
+def _bends(sampler: Sampler, members: Indices, local: Array, weights: Array) -> Array:
+    """Second derivatives of the weighed outputs by the inputs on a grid of some intervals, times the quadrature weights
+    (G x Q x I x I)."""
+    point, each = sampler.point, len(local)
     if local is HALVES:
-        kept = (members[:, None] * len(local) + np.arange(len(local))).ravel()
-        whole = sampler.halves
-        parts = (whole.interval, whole.local, whole.places, whole.v, whole.d, whole.measure)
-        return Sample(*(part[kept] for part in parts)), sampler.weights(whole)[kept]
-    sample = sampler.sample(np.repeat(members, len(local)), np.tile(local, len(members)))
-    return sample, sampler.weights(sample)
-
-
-def _bends(sampler: Sampler, sampled: tuple[Sample, Array], weights: Array) -> Array:
-    """Second derivatives of the weighed outputs by the inputs, times the quadrature weights (G x Q x I x I)."""
-    (sample, counts), point = sampled, sampler.point
-    numbers = mapped(point.hessian, sample.v, sample.d, counts)
-    numbers = numbers * (np.resize(weights, len(sample.local)) * sampler.width[sample.interval])[:, None]
-    bends = np.zeros((len(sample.local), point.inputs, point.inputs))
+        numbers = sampler.halves_bends[(members[:, None] * each + np.arange(each)).ravel()]
+    else:
+        sample = sampler.sample(np.repeat(members, each), np.tile(local, len(members)))
+        numbers = mapped(point.hessian, sample.v, sample.d, sampler.weights(sample))
+    numbers = numbers * (weights * sampler.width[members, None]).reshape(-1, 1)
+    bends = np.zeros((len(numbers), point.inputs, point.inputs))
     for entry, (row, column) in enumerate(zip(point.hessian_rows, point.hessian_columns, strict=True)):
         bends[:, row, column] = bends[:, column, row] = numbers[:, entry]
-    return bends.reshape(-1, len(weights), point.inputs, point.inputs)
+    return bends.reshape(-1, each, point.inputs, point.inputs)
 
 
 def _squares(sampler: Sampler, members: Indices, trial: Array, weights: Array) -> Array:
@@ -90,18 +95,19 @@ def _squares(sampler: Sampler, members: Indices, trial: Array, weights: Array) -
     return np.asarray(share[:, None, None] * (flat.T @ flat))
 
 
-def _trial(sampler: Sampler, state_modes: Array, control_modes: Array, local: Array) -> Array:
-    """The inputs at local places from an interval's own variables (Q x I x D)."""
-    n, m, rest = sampler.point.states, sampler.point.controls, 2 + len(sampler.problem.parameters)
-    degree = len(control_modes)
-    states = basis(2 * local - 1, degree) @ state_modes
-    controls = basis(2 * local - 1, degree - 1) @ control_modes
+@lru_cache(maxsize=64)
+def _trial(family: Family, degree: int, n: int, m: int, parameters: int) -> Array:
+    """The inputs on the grid of an interval from its own variables (Q x I x D)."""
+    used, local, rest = scheme(family, degree), grid_for(degree)[0], 2 + parameters
+    states = basis(2 * local - 1, degree) @ used.state_modes
+    controls = basis(2 * local - 1, degree - 1) @ used.control_modes
     trial = np.zeros((len(local), n + m + rest, (degree + 1) * n + degree * m + rest))
     for i in range(n):
         trial[:, i, i : (degree + 1) * n : n] = states
     for i in range(m):
         trial[:, n + i, (degree + 1) * n + i : (degree + 1) * n + degree * m : m] = controls
     trial[:, n + m :, (degree + 1) * n + degree * m :] = np.eye(rest)
+    trial.setflags(write=False)
     return trial
 
 
@@ -123,7 +129,7 @@ def _condensed(trial: Array, forms: Array) -> Array:
     return np.asarray(trial.reshape(places * inputs, -1).T @ applied)
 
 
-def _at_places(sampler: Sampler) -> sp.coo_matrix:
+def _at_places(sampler: Sampler) -> Scattered:
     """Second derivatives of the endpoint term and of the conditions, weighed."""
     path, program, end = sampler.path, sampler.path.program, sampler.compiled.end
     y = path.z[program.layout.end_gather]
@@ -134,5 +140,4 @@ def _at_places(sampler: Sampler) -> sp.coo_matrix:
     row = program.layout.end_gather[np.concatenate([rows, columns[mixed]])]
     column = program.layout.end_gather[np.concatenate([columns, rows[mixed]])]
     scale = program.scale[row] * program.scale[column] / abs(program.value_scale)
-    values = np.concatenate([numbers, numbers[mixed]]) * scale
-    return sp.coo_matrix((values, (row, column)), shape=(program.layout.size,) * 2)
+    return Scattered((program.layout.size,) * 2, row, column, np.concatenate([numbers, numbers[mixed]]) * scale)

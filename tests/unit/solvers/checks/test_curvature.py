@@ -120,9 +120,9 @@ def test_the_second_variation_is_the_programs_where_quadrature_is_exact(stationa
         [program.layout.nodes[:1].ravel(), program.layout.inner.ravel(), program.layout.controls.ravel()]
     )
     change = np.random.default_rng(5).normal(size=len(inside))
-    ours, theirs = (change @ m[np.ix_(inside, inside)] @ change for m in (form.toarray(), expected))
+    ours, theirs = (change @ m[np.ix_(inside, inside)] @ change for m in (form.dense(), expected))
     assert ours == pytest.approx(theirs, rel=1e-9)
-    assert np.all(np.linalg.eigvalsh(metric.toarray()) > -1e-14)
+    assert np.all(np.linalg.eigvalsh(metric.dense()) > -1e-14)
 
 
 CAPPED = {
