@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
+from functools import lru_cache
 
 import numpy as np
 from numpy.polynomial import legendre
@@ -30,11 +31,7 @@ def regraph(
     does not advance (vertical ones) have no room in a function of x and are left out.
     """
     span = float(x(breaks[-1:])[0] - x(breaks[:1])[0])
-    nodes = legendre.leggauss(DEGREE + 1)[0]
-    fit = np.linalg.inv(basis(nodes, DEGREE))
-    between = np.linspace(-0.97, 0.97, 9)
-    places = np.concatenate([nodes, between])
-    probing = basis(between, DEGREE)
+    places, fit, probing = _fitting()
     size = float(np.abs(functions[leading](breaks)).max()) or 1.0
     done: list[tuple[Array, Array, dict[str, Array]]] = []
     starts, ends, count = breaks[:-1], breaks[1:], 0
@@ -44,8 +41,7 @@ def regraph(
         advancing = width > 1e-3 * FINEST * span
         starts, ends, left, right, width = (values[advancing] for values in (starts, ends, left, right, width))
         wanted = (left + right)[:, None] / 2 + places * width[:, None] / 2
-        samples = _inverse(x, np.repeat(starts, len(places)), np.repeat(ends, len(places)), wanted.ravel())
-        inside, probes = np.split(samples.reshape(wanted.shape), [len(nodes)], axis=1)
+        inside, probes = np.split(_inverse(x, starts, ends, wanted), [DEGREE + 1], axis=1)
         misses = np.abs(_at(functions[leading], inside) @ fit.T @ probing.T - _at(functions[leading], probes))
         count += len(starts)
         good = (misses.max(axis=1) <= 1e-10 * size) | (width <= FINEST * span) | (count >= MOST_PIECES)
@@ -62,26 +58,38 @@ def regraph(
     )
 
 
+@lru_cache
+def _fitting() -> tuple[Array, Array, Array]:
+    """Local places that a polynomial is fitted at and then some between, what fits it, and its values between."""
+    nodes, between = legendre.leggauss(DEGREE + 1)[0], np.linspace(-0.97, 0.97, 9)
+    fit: Array = np.linalg.inv(basis(nodes, DEGREE)).astype(np.float64)
+    return np.concatenate([nodes, between]), fit, basis(between, DEGREE)
+
+
 def _at(function: Callable[[Array], Array], places: Array) -> Array:
     """A function of a list at a table of places."""
     return np.asarray(function(places.ravel()).reshape(places.shape))
 
 
 def _inverse(x: Callable[[Array], Array], low: Array, high: Array, wanted: Array) -> Array:
-    """Parameters at which x has the wanted values: each bracket is cut into sixteen, then by bracketing chords.
+    """Parameters at which x has the wanted values, a row for each bracket: it is cut into sixteen, then by chords.
 
     An end of the bracket that has stayed twice counts as half as far off, so that both ends move (the Illinois method;
     Dowell, Jarratt, 1971, A modified regula falsi method for computing the root of an equation, BIT 11; from memory).
     """
     grid = low[:, None] + (high - low)[:, None] * np.linspace(0.0, 1.0, 17)
-    values = x(grid.ravel()).reshape(grid.shape) - wanted[:, None]
-    rows, cell = np.arange(len(wanted)), np.clip((values <= 0).sum(axis=1) - 1, 0, 15)
-    low, high, below, above = grid[rows, cell], grid[rows, cell + 1], values[rows, cell], values[rows, cell + 1]
+    values = _at(x, grid)[:, None, :] - wanted[:, :, None]
+    cell = np.clip((values <= 0).sum(axis=-1) - 1, 0, 15)
+    rows, columns = np.ogrid[: len(wanted), : wanted.shape[1]]
+    low, high, below, above = (part.ravel() for part in (
+        grid[rows, cell], grid[rows, cell + 1], values[rows, columns, cell], values[rows, columns, cell + 1]
+    ))  # fmt: skip
+    goal = wanted.ravel()
     at, before = low, np.zeros(len(low))
     for _ in range(CHORDS):
         rise = np.where(above > below, above - below, 1.0)
         at = low - (high - low) * np.clip(below / rise, -1.0, 0.0)
-        here = x(at) - wanted
+        here = x(at) - goal
         if np.abs(here).max(initial=0.0) <= EXACT * np.abs(values).max(initial=0.0):
             break
         left = here < 0
@@ -89,4 +97,4 @@ def _inverse(x: Callable[[Array], Array], low: Array, high: Array, wanted: Array
         stayed = np.where(side == before, 0.5, 1.0)
         above, below = np.where(left, stayed * above, here), np.where(left, here, stayed * below)
         low, high, before = np.where(left, at, low), np.where(left, high, at), side
-    return at
+    return at.reshape(wanted.shape)
