@@ -12,22 +12,14 @@ from solvers.tables.lookups import Lookups
 class Differentiated:
     """A function (v, d) -> outputs with its exact first and second derivatives by v, each made when first asked for.
 
+    `inputs` is the length of v, `outputs` the number of outputs.
     `jacobian` (v, d) has the nonzeros of the Jacobian of all outputs at `jacobian_rows` and `jacobian_columns`,
     `hessian` (v, d, weights of the outputs) those of the upper triangle at `hessian_rows` and `hessian_columns`.
     """
 
     def __init__(self, name: str, v: ca.SX, d: ca.SX, outputs: ca.SX, lookups: Lookups) -> None:
         self._name, self._v, self._d, self._outputs, self._lookups = name, v, d, outputs, lookups
-
-    @property
-    def inputs(self) -> int:
-        """The length of v."""
-        return int(self._v.size1())
-
-    @property
-    def outputs(self) -> int:
-        """The number of outputs."""
-        return int(self._outputs.size1())
+        self.inputs, self.outputs = int(v.size1()), int(outputs.size1())
 
     @cached_property
     def value(self) -> ca.Function:

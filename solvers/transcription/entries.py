@@ -73,11 +73,11 @@ class Entries:
 
     def add(self, rows: Any, columns: Any, values: Any, sources: Any = CONSTANT) -> None:
         """Entries with their values, times the number at `sources` where there is one."""
-        rows, columns, values, sources = np.broadcast_arrays(rows, columns, values, sources)
-        self._rows.append(rows.ravel())
-        self._columns.append(columns.ravel())
-        self._values.append(values.ravel().astype(float))
-        self._sources.append(sources.ravel())
+        shape = np.broadcast(rows, columns, values, sources).shape
+        self._rows.append(_spread(rows, shape, np.int64))
+        self._columns.append(_spread(columns, shape, np.int64))
+        self._values.append(_spread(values, shape, np.float64))
+        self._sources.append(_spread(sources, shape, np.int64))
 
     def recipe(self, shape: tuple[int, int]) -> Recipe:
         """How the matrix is made."""
@@ -95,6 +95,13 @@ class Entries:
         columns = keys // shape[0]
         pattern = Pattern(shape, keys - columns * shape[0], np.searchsorted(columns, np.arange(shape[1] + 1)))
         return Recipe(pattern, constant, sources[made], values[made], first, place[first])
+
+
+def _spread(given: Any, shape: tuple[int, ...], kind: type) -> NDArray[Any]:
+    """What is given for every entry, one after the other."""
+    spread: NDArray[Any] = np.empty(shape, kind)
+    spread[...] = given
+    return spread.ravel()
 
 
 def counted(places: Indices, values: Array, size: int) -> Array:

@@ -66,23 +66,22 @@ class Numbers:
         ordinal = np.arange(self.count)[:, None]
         n, c, q = point.states, point.constraints, point.integrals
         # Where every output of the point function goes: a row and a factor; the functional, the last one, has no row.
-        self.target = np.hstack([rows.defects + ordinal * n + np.arange(n), rows.pointwise + ordinal * c + np.arange(c),
-                                 np.tile(rows.integrals + np.arange(q), (self.count, 1))]).astype(np.int64)  # fmt: skip
+        self.target = np.empty((self.count, n + c + q), dtype=np.int64)
+        self.target[:, :n] = rows.defects + ordinal * n + np.arange(n)
+        self.target[:, n : n + c] = rows.pointwise + ordinal * c + np.arange(c)
+        self.target[:, n + c :] = rows.integrals + np.arange(q)
         widths = np.repeat([i.width for i in placed.mesh.intervals], np.diff(where.first))
-        factor = [
-            np.tile(-widths[:, None], (1, n)),
-            np.ones((self.count, c)),
-            np.tile(-where.measures[:, None], (1, q)),
-        ]
-        self.factor = np.hstack(factor) / placed.row_scale[self.target]
+        self.factor = np.ones((self.count, n + c + q))
+        self.factor[:, :n] = -widths[:, None]
+        self.factor[:, n + c :] = -where.measures[:, None]
+        self.factor /= placed.row_scale[self.target]
         self.cost = where.measures * self.value_factor
         self.condition_rows = rows.conditions + np.arange(self.conditions)
         self._condition_sizes = placed.row_scale[rows.conditions :]
         self._gather, self._end_gather = whole_chunks(placed.layout.gather), placed.layout.end_gather
         self._sizes, self._end_sizes = placed.scale[self._gather], placed.scale[self._end_gather]
         self._spanned = spanned(placed)
-        self._loose = list(loose_rows(placed))
-        self._linear = self._gathered()
+        self._linear = self._loose()
         self._take(placed.compiled.constants)
         self._jacobian, self._gradient, self._hessian = self._recipes()
 
@@ -186,9 +185,9 @@ class Numbers:
             moving[place] = not placed.fixed[placed.layout.gather[:, place]].all()
         return moving
 
-    def _gathered(self) -> tuple[Indices, Indices, Array]:
+    def _loose(self) -> tuple[Indices, Indices, Array]:
         """Columns, rows and values (scaled) of the linear rows that are no defects."""
-        rows, columns, values = (np.concatenate(parts) for parts in zip(*self._loose, strict=True))
+        rows, columns, values = (np.concatenate(parts) for parts in zip(*loose_rows(self._placed), strict=True))
         return columns, rows, values * self._placed.scale[columns] / self._placed.row_scale[rows]
 
     def _recipes(self) -> tuple[Recipe, Recipe, Recipe]:
@@ -197,7 +196,9 @@ class Numbers:
         size, scale, row_scale = placed.layout.size, placed.scale, placed.row_scale
         jacobian, gradient, hessian = Entries(), Entries(), Entries()
         moving = self._moving()
-        for row, columns, values in (*self._loose, *slope_entries(placed, self._spanned)):
+        columns, loose, values = self._linear
+        jacobian.add(loose, columns, values)
+        for row, columns, values in slope_entries(placed, self._spanned):
             jacobian.add(row, columns, values * scale[columns] / row_scale[row])
         out, by = np.array(point.jacobian_rows, int), np.array(point.jacobian_columns, int)
         each = np.arange(self.count)[:, None] * len(out)

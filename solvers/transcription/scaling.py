@@ -125,6 +125,8 @@ def _moving(compiled: Compiled, where: Layout, z: Array, control: int, states: A
 def _integral_sizes(compiled: Compiled, where: Layout, z: Array) -> Array:
     """Integrals of the absolute values: an integral that cancels to zero is not small for that."""
     point = compiled.point
+    if not point.integrals:
+        return np.zeros(0)
     outputs = point_outputs(compiled, where, z)
     first = point.states + point.constraints
     integrands = np.abs(outputs[:, first : first + point.integrals])
@@ -156,7 +158,7 @@ def find_row_sizes(compiled: Compiled, where: Layout, scales: Scales, z: Array) 
     value = float(where.measures @ integrand) + float(end_slopes[-1])
     value = max(value, EXACT * _squares(compiled))
     return RowSizes(
-        pointwise=_positive(np.median(pointwise, axis=0)),
+        pointwise=_positive(np.median(pointwise, axis=0)) if point.constraints else np.zeros(0),
         conditions=_positive(end_slopes[:-1]),
         value=value if value > 0 and np.isfinite(value) else 1.0,
     )
