@@ -65,43 +65,50 @@ class Steps:
 
 
 def steps_through(places: Array) -> Steps:
-    """Steps that pass through local places, graded towards both ends, where coefficients may grow without bound."""
+    """Steps that pass through local places, graded towards both ends, where coefficients may grow without bound.
+
+    They look the same from both ends where the places do.
+    """
     outer = np.concatenate([np.geomspace(places[0], places[1], 4)[1:-1], [np.sqrt(places[1] * places[2])]])
     edges = np.sort(np.concatenate([[0.0, 1.0], outer, 1 - outer, places]))
     return Steps(edges, np.searchsorted(edges, places))
 
 
-def integrate(steps: Steps, matrix: Array, source: Array, length: Array, start: Array, backwards: bool) -> Array:
-    """Solve p' = -(A' p + b) on N intervals: p at all edges, N x E x n.
+def integrate(steps: Steps, matrix: Array, source: Array, length: Array, start: Array) -> Array:
+    """Solve p' = -(A' p + b) on N intervals from right to left: p at all edges, N x E x n.
 
     `matrix` (N x S x n x n: slopes of rate i by state j) and `source` (N x S x n) at the S stages, `length` (N) of the
-    intervals in the independent variable, `start` (N x n) at the right end if `backwards`, else at the left.
+    intervals in the independent variable, `start` (N x n) at their right ends.
     """
     count, n = start.shape
     total = len(steps.edges)
+    step = np.diff(steps.edges) * length[:, None]
+    if not matrix.any():  # no rate depends on a state: only sums are left
+        moves = step[:, :, None] * np.einsum("s,nksi->nki", _B, source.reshape(count, total - 1, 3, n))
+        parts = np.concatenate([start[:, None], moves[:, ::-1]], axis=1)
+        return np.asarray(np.cumsum(parts, axis=1)[:, ::-1])
     values = np.empty((count, total, n))
-    values[:, -1 if backwards else 0] = start
+    values[:, -1] = start
     group = max(1, LARGEST_BATCH // ((total - 1) * 3 * n * (4 * n + 1) or 1))
     for first in range(0, count, group):
         own = slice(first, first + group)
-        turned, added = _moves(steps, matrix[own], source[own], length[own], backwards)
+        turned, added = _moves(matrix[own], source[own], step[own])
         part = values[own]
-        for k in range(total - 2, -1, -1) if backwards else range(total - 1):
-            before = part[:, k + 1 if backwards else k]
-            part[:, k if backwards else k + 1] = before + (turned[:, k] @ before[:, :, None])[:, :, 0] + added[:, k]
+        for k in range(total - 2, -1, -1):
+            before = part[:, k + 1]
+            part[:, k] = before + (turned[:, k] @ before[:, :, None])[:, :, 0] + added[:, k]
     return values
 
 
-def _moves(steps: Steps, matrix: Array, source: Array, length: Array, backwards: bool) -> tuple[Array, Array]:
+def _moves(matrix: Array, source: Array, step: Array) -> tuple[Array, Array]:
     """What each step adds to the solution: a matrix times it (N x E-1 x n x n), and a vector (N x E-1 x n)."""
-    (count, _, n, _), total = matrix.shape, len(steps.edges)
-    nodes = _A if not backwards else _A[::-1, ::-1]  # the method is symmetric: backwards its stages change places
-    step = np.diff(steps.edges) * length[:, None] * (-1.0 if backwards else 1.0)
-    transposed = -np.swapaxes(matrix, -1, -2).reshape(count, total - 1, 3, n, n)
+    (count, steps), n = step.shape, matrix.shape[-1]
+    nodes = _A[::-1, ::-1]  # the method is symmetric: backwards its stages change places
+    transposed = np.swapaxes(matrix, -1, -2).reshape(count, steps, 3, n, n)
     system = -step[:, :, None, None, None, None] * transposed[:, :, :, None] * nodes[:, :, None, None]
     system = np.swapaxes(system, 3, 4).reshape(-1, 3 * n, 3 * n) + np.eye(3 * n)
-    right = np.concatenate([transposed, -source.reshape(count, total - 1, 3, n, 1)], axis=-1)
-    slopes = _solved(system, right.reshape(-1, 3 * n, n + 1)).reshape(count, total - 1, 3, n, n + 1)
+    right = np.concatenate([transposed, source.reshape(count, steps, 3, n, 1)], axis=-1)
+    slopes = _solved(system, right.reshape(-1, 3 * n, n + 1)).reshape(count, steps, 3, n, n + 1)
     moves = step[:, :, None, None] * np.einsum("s,nksij->nkij", _B, slopes)
     return moves[..., :n], moves[..., n]
 
@@ -116,30 +123,28 @@ def _solved(system: Array, right: Array) -> Array:
     return answer
 
 
-def continued(sampler: Sampler, places: Array) -> Continued:
-    """The costates at local places of every interval."""
+def continued(sampler: Sampler, steps: Steps) -> Continued:
+    """The costates at the wanted places of every interval."""
     count, n = sampler.count, sampler.point.states
-    every = np.arange(count)
     left, right = sampler.costate_ends[:, 0], sampler.costate_ends[:, 1]
     joined = np.append(np.diff(sampler.stretch) == 0, False)  # the next interval belongs to the same stretch
     start = right.copy()
     start[joined] = left[1:][joined[:-1]]
     from_left = count > 1 and bool(joined[-2]) and any(fixed for _, fixed in sampler.fixed_ends)
     if from_left:
-        start[-2] = right[-2]  # the last interval's own polynomial is of no use at its left end
-    far = every.copy()
-    steps = steps_through(places)
+        start[-2:] = right[-2]  # the last interval's own polynomial is of no use at its left end
+    far = np.arange(count)
     sample = sampler.grid(steps.stages)
     slopes = sampler.slopes(sample)
     matrix = _rate_slopes(sampler, slopes, sample.interval).reshape(count, -1, n, n)
     weights = sampler.weights(sample, costates=np.zeros(n))
     source = sampler.gradient(sample, slopes, weights)[:, :n].reshape(count, -1, n)
-    values = integrate(steps, matrix, source, sampler.length, start, backwards=True)
+    if from_left:  # turned round, that interval runs from right to left as well
+        matrix[-1], source[-1] = -matrix[-1, ::-1], -source[-1, ::-1]
+    values = integrate(steps, matrix, source, sampler.length, start)
     jumps = values[:, 0] - left
     if from_left:
-        last = slice(count - 1, count)
-        values[last] = integrate(steps, matrix[last], source[last], sampler.length[last], right[count - 2][None, :],
-                                 backwards=False)  # fmt: skip
+        values[-1] = values[-1, ::-1].copy()
         jumps[-1], far[-1] = values[-1, -1] - right[-1], count
     inside = values[:, steps.wanted]
     shares = (sampler.path.breaks[far] - sampler.path.breaks[0]) / sampler.span
@@ -150,6 +155,7 @@ def continued(sampler: Sampler, places: Array) -> Continued:
     lacking |= (weights == 0).any(axis=1)  # at a fixed end a costate is free: no jump can tell
     kept = (touched(sampler) & lacking) | ~np.isfinite(inside).all(axis=(1, 2))
     if kept.any():
+        places = steps.edges[steps.wanted]
         inside[kept] = sampler.in_each(sampler.costates[kept], places).reshape(-1, len(places), n)
     return Continued(inside.reshape(-1, n), jumps, far, kept)
 

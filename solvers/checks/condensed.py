@@ -31,23 +31,21 @@ def count_negative(form: Array, rows: Array, owner: Indices, penalty: float, noi
     """
     rows = rows * (owner != FIXED)
     length = np.sqrt(np.einsum("ij,ij->i", rows, rows))
-    rows = rows * np.where(length > NOTHING, 1 / np.maximum(length, NOTHING), 0.0)[:, None]
+    rows *= np.where(length > NOTHING, 1 / np.maximum(length, NOTHING), 0.0)[:, None]
     count = int(owner.max(initial=SHARED)) + 1
-    touched = np.zeros((len(rows), count + 1), bool)
-    where = np.nonzero(rows)
-    touched[where[0], owner[where[1]]] = True  # the last column is that of what is shared
-    touching = touched[:, :count].sum(axis=1)
+    touched = np.abs(rows) @ (owner[:, None] == np.arange(count)) > 0
+    touching = touched.sum(axis=1)
     shared, crossing = np.flatnonzero(owner == SHARED), np.flatnonzero(touching > 1)
     inner, there = _by_owner(owner, count)
-    own, used = _by_owner(np.where(touching == 1, touched.argmax(axis=1), SHARED), count)
+    own, used = _by_owner(np.where(touching == 1, touched @ np.arange(count), SHARED), count)
     near = rows[own[:, :, None], inner[:, None, :]] * (used[:, :, None] & there[:, None, :])
-    ends = rows[own][:, :, shared] * used[:, :, None]
+    ends = rows[own[:, :, None], shared] * used[:, :, None]
     across = rows[crossing]
     block = np.where(there[:, :, None] & there[:, None, :], form[inner[:, :, None], inner[:, None, :]], 0.0)
     block += np.swapaxes(near, 1, 2) @ near / penalty
     every = np.arange(inner.shape[1])
     block[:, every, every] += ~there
-    side = np.concatenate([form[inner][:, :, shared], across.T[inner]], axis=2) * there[:, :, None]
+    side = np.concatenate([form[inner[:, :, None], shared], across.T[inner]], axis=2) * there[:, :, None]
     side[:, :, : len(shared)] += np.swapaxes(near, 1, 2) @ ends / penalty
     alone = rows[touching <= 1][:, shared]
     corner = np.zeros((len(shared) + len(crossing),) * 2)

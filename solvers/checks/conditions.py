@@ -96,8 +96,9 @@ def integrate(sampler: Sampler, accuracy: float) -> tuple[Array, float]:
     total = np.zeros(sampler.point.outputs - kept.start)
     size = np.zeros_like(total)
     for turn in range(ROUNDS):
-        sample = sampler.sample(np.repeat(interval, 15), (left[:, None] + width[:, None] * POINTS).ravel())
-        values = sampler.outputs(sample)[:, kept].reshape(len(interval), 15, -1)
+        local = left[:, None] + width[:, None] * POINTS
+        sample = sampler.sample(np.repeat(interval, len(POINTS)), local.ravel()) if turn else sampler.grid(POINTS)
+        values = sampler.outputs(sample)[:, kept].reshape(len(interval), len(POINTS), -1)
         values = values * (sampler.width[interval] * width)[:, None, None]
         fine, coarse = np.einsum("q,kqi->ki", WEIGHTS, values), np.einsum("q,kqi->ki", COARSE, values)
         if turn == 0:

@@ -34,10 +34,10 @@ SAME = 1e-3
 def check(sampler: Sampler) -> Check:
     """The largest jump of the Hamiltonian at a corner, against the square root of the tolerance."""
     found = corners(sampler)
-    if rounded_functions(sampler.problem):
-        return Check(NAME, Status.NOT_APPLICABLE, "Formulas with kinks may make corners of their own.")
     if not len(found):
         return Check(NAME, Status.NOT_APPLICABLE, "The curve has no corner that could move.")
+    if rounded_functions(sampler.problem):
+        return Check(NAME, Status.NOT_APPLICABLE, "Formulas with kinks may make corners of their own.")
     threshold = float(np.sqrt(sampler.tolerance))
     left, right = (_hamiltonian(sampler, found - 1, 1.0), _hamiltonian(sampler, found, 0.0))
     jumps = np.abs(right - left) / sampler.power
@@ -56,16 +56,16 @@ def corners(sampler: Sampler) -> NDArray[np.int64]:
     """The inner breaks at which a control jumps, the costates do not, and that something lets move."""
     if not sampler.point.controls or sampler.count < 2:
         return np.zeros(0, dtype=np.int64)
-    inner = np.arange(1, sampler.count)
     controls, costates = sampler.control_ends, sampler.costate_ends
     jump = np.abs(controls[1:, 0] - controls[:-1, 1]) / sampler.control_sizes
     leap = np.abs(costates[1:, 0] - costates[:-1, 1])
     sizes = np.abs(sampler.continued.values).max(axis=0, initial=0.0)
     whole = np.all(leap <= SAME * np.where(sizes > 0, sizes, 1.0), axis=1)
     places = sampler.problem.places
-    own = [node for node, place in zip(sampler.path.program.layout.at_place, places, strict=True)
-           if not place.label.startswith(SWITCH + " ")]  # fmt: skip
-    return np.flatnonzero((jump.max(axis=1) > SHARP) & whole & ~np.isin(inner, own)) + 1
+    movable = np.ones(sampler.count + 1, bool)
+    movable[[node for node, place in zip(sampler.path.program.layout.at_place, places, strict=True)
+             if not place.label.startswith(SWITCH + " ")]] = False  # fmt: skip
+    return np.flatnonzero((jump.max(axis=1) > SHARP) & whole & movable[1:-1]) + 1
 
 
 def _room(sampler: Sampler, found: NDArray[np.int64]) -> Array:

@@ -18,7 +18,7 @@ from scipy.sparse.linalg import ArpackError, LinearOperator, eigsh, splu
 from solvers.checks import condensed
 from solvers.checks.condensed import SHARED
 from solvers.checks.sampling import Sampler
-from solvers.checks.scattered import Scattered, both_triangles
+from solvers.checks.scattered import Scattered, both_triangles, scattered
 from solvers.checks.variation import second_variation
 from solvers.deadline import FOREVER, Deadline
 from solvers.search.signals import SWITCH
@@ -83,7 +83,7 @@ def second_order(sampler: Sampler) -> Second:
     bounds = path.bound_multipliers * program.scale / size
     hessian, metric = second_variation(sampler)
     pattern, nonzeros = numbers.jacobian_pattern, numbers.jacobian(z)
-    jacobian = Scattered(pattern.shape, pattern.rows, pattern.columns(), nonzeros)
+    jacobian = scattered(pattern.shape, pattern.rows, pattern.columns(), nonzeros)
     values = numbers.constraints(z)
     share = sampler.value_size / size
     weight = where.measures * np.abs((path.places[where.stretch + 1] - path.places[where.stretch]) / sampler.span)
@@ -147,15 +147,15 @@ def hessian_of_program(sampler: Sampler) -> Scattered:
     multipliers = path.row_multipliers * program.row_scale / abs(program.value_scale)
     pattern, numbers = program.numbers.hessian_pattern, program.numbers
     upper = numbers.hessian(path.z / program.scale, 1.0, multipliers)
-    return both_triangles(Scattered(pattern.shape, pattern.rows, pattern.columns(), upper))
+    return both_triangles(scattered(pattern.shape, pattern.rows, pattern.columns(), upper))
 
 
 def _pushed_throughout(sampler: Sampler, resting: Flags, bounds: Array, least: Array) -> Flags:
     """Controls that rest on one bound all through an interval that pushes on the whole: a switch may touch its end."""
     where, values = sampler.path.program.layout, sampler.path.controls
-    if not values.size:
-        return np.zeros(values.shape, bool)
     controls, first = where.controls, where.first[:-1]
+    if not resting[controls].any():
+        return np.zeros(values.shape, bool)
     above = np.abs(sampler.bounds[3] - values) < np.abs(values - sampler.bounds[2])
     push = np.where(above, bounds[controls], -bounds[controls])
     whole = np.minimum.reduceat(np.where(resting[controls], push, -np.inf), first, axis=0) >= -least.max()
@@ -225,7 +225,7 @@ def count_negative(
 
 def _condensed(second: Second, free: Flags, rows: Flags, shift: float) -> int | None:
     """The count in full matrices: few numbers are sooner multiplied than looked for."""
-    form = second.hessian.dense() + shift * second.metric.dense()
+    form = second.hessian.plus(second.metric, shift).dense()
     owner = np.where(free, second.owner, condensed.FIXED)
     return condensed.count_negative(form, second.jacobian.dense()[rows], owner, PENALTY, NOISE)
 

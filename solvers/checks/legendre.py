@@ -71,6 +71,8 @@ def least_eigenvalues(sampler: Sampler) -> tuple[Array, Flags]:
     rows = np.stack(forbidden, axis=1)
     undefined = ~np.isfinite(bends).all(axis=(1, 2)) | ~np.isfinite(rows).all(axis=(1, 2))
     bends[undefined], rows[undefined] = -np.eye(m), 0.0
+    if not rows.any():
+        return np.asarray(np.linalg.eigvalsh(bends)[:, 0]), np.full(len(bends), True)
     _, strengths, directions = np.linalg.svd(rows, full_matrices=True)
     rank = (strengths > 1e-9).sum(axis=1)
     left_over = np.arange(m) >= rank[:, None]  # rows of `directions` that span what is free

@@ -112,7 +112,7 @@ def _advanced(sampler: Sampler, intervals: Indices, steps: int) -> tuple[Array, 
     error = np.zeros_like(state)
     owner, width = np.tile(intervals, rows), np.repeat(1 / (steps * PARTS), count)
     parts = range(1, int(PARTS[-1]))
-    open_ = [np.flatnonzero(np.repeat(part < PARTS, count)) for part in parts]
+    open_ = [slice(count * np.count_nonzero(part >= PARTS), None) for part in parts]  # the finer ones go on
     visited = [intervals, *(owner[own] for own in open_)]  # all subdivisions take the same first slope
     local = np.concatenate([np.zeros(count), *(part * width[own] for part, own in zip(parts, open_, strict=True))])
     turns = [slice(*pair) for pair in pairwise(np.cumsum([0, *map(len, visited)]))]

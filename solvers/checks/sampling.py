@@ -13,7 +13,7 @@ import numpy as np
 from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
-from solvers.checks.adjoint import Continued, continued
+from solvers.checks.adjoint import Continued, continued, steps_through
 from solvers.problem import Seek
 from solvers.series import basis
 from solvers.transcription.evaluation import mapped
@@ -28,6 +28,7 @@ _NODES, _WEIGHTS = legendre.leggauss(6)
 HALVES = np.concatenate([(_NODES + 1) / 4, (_NODES + 3) / 4])
 """Gauss points of both halves of an interval: none of them is a collocation point of any scheme in use."""
 HALF_WEIGHTS = np.concatenate([_WEIGHTS, _WEIGHTS]) / 4
+_STEPS = steps_through(HALVES)
 
 
 @dataclass(frozen=True, slots=True)
@@ -193,7 +194,7 @@ class Sampler:
     @cached_property
     def continued(self) -> Continued:
         """The costates on the grid of halves, integrated anew from the nodes."""
-        return continued(self, HALVES)
+        return continued(self, _STEPS)
 
     @cached_property
     def control_ends(self) -> Array:

@@ -14,12 +14,21 @@ Indices = NDArray[np.int64]
 
 @dataclass(frozen=True, slots=True)
 class Scattered:
-    """Rows, columns and values of the entries of a matrix."""
+    """Places, row by row, and values of the entries of a matrix."""
 
     shape: tuple[int, int]
-    rows: Indices
-    columns: Indices
+    places: Indices
     values: Array
+
+    @property
+    def rows(self) -> Indices:
+        """The row of every entry."""
+        return self.places // self.shape[1]
+
+    @property
+    def columns(self) -> Indices:
+        """The column of every entry."""
+        return self.places % self.shape[1]
 
     @property
     def finite(self) -> bool:
@@ -28,8 +37,7 @@ class Scattered:
 
     def dense(self) -> Array:
         """The full matrix."""
-        height, width = self.shape
-        flat = np.bincount(self.rows * width + self.columns, self.values, height * width)
+        flat = np.bincount(self.places, self.values, self.shape[0] * self.shape[1])
         return flat.reshape(self.shape).astype(float, copy=False)  # without any values NumPy counts in integers
 
     def sparse(self) -> Any:
@@ -38,13 +46,19 @@ class Scattered:
 
         return coo_matrix((self.values, (self.rows, self.columns)), shape=self.shape).tocsr()
 
+    def plus(self, other: Scattered, factor: float = 1.0) -> Scattered:
+        """The sum with a multiple of another matrix."""
+        places = np.concatenate([self.places, other.places])
+        return Scattered(self.shape, places, np.concatenate([self.values, factor * other.values]))
+
+
+def scattered(shape: tuple[int, int], rows: Indices, columns: Indices, values: Array) -> Scattered:
+    """A matrix from rows, columns and values of its entries."""
+    return Scattered(shape, rows * shape[1] + columns, values)
+
 
 def both_triangles(upper: Scattered) -> Scattered:
     """A symmetric matrix from its upper triangle."""
-    mixed = upper.rows != upper.columns
-    return Scattered(
-        upper.shape,
-        np.concatenate([upper.rows, upper.columns[mixed]]),
-        np.concatenate([upper.columns, upper.rows[mixed]]),
-        np.concatenate([upper.values, upper.values[mixed]]),
-    )
+    rows, columns = upper.rows, upper.columns
+    below = rows != columns
+    return upper.plus(scattered(upper.shape, columns[below], rows[below], upper.values[below]))

@@ -45,7 +45,9 @@ Finding = tuple[float, float, str, str]
 def check(sampler: Sampler) -> Check:
     """The largest of the three figures against the square root of the tolerance."""
     threshold = float(np.sqrt(sampler.tolerance))
-    findings = [*_controls(sampler), *_costates(sampler), *_multipliers(sampler), *_gain(sampler, threshold)]
+    step = _projected_step(sampler)
+    findings = [*_controls(sampler, step), *_costates(sampler), *_multipliers(sampler),
+                *_gain(sampler, step, threshold)]  # fmt: skip
     if not findings:
         return Check(NAME, Status.NOT_APPLICABLE, "There is no function to vary.")
     figure, place, subject, sentence = max(findings, key=lambda finding: finding[0])
@@ -57,10 +59,10 @@ def _finite(values: Array) -> Array:
     return np.where(np.isfinite(values), values, np.inf)
 
 
-def _controls(sampler: Sampler) -> list[Finding]:
+def _controls(sampler: Sampler, step: Array) -> list[Finding]:
     """For each control the mean projected step, relative to its size."""
     m, sample = sampler.point.controls, sampler.halves
-    steps = control_steps(sampler)
+    steps = np.abs(step) / sampler.control_sizes
     findings = []
     for j in range(m):
         figure = float(sampler.mean(steps[:, j]))
@@ -77,45 +79,36 @@ ROOM = 10.0
 """How much more than the tolerance of the value they may gain."""
 
 
-def _gain(sampler: Sampler, threshold: float) -> list[Finding]:
+def _gain(sampler: Sampler, step: Array, threshold: float) -> list[Finding]:
     """The mean gain of the best part of the projected step, so scaled that its limit is the threshold."""
     n, m, sample = sampler.point.states, sampler.point.controls, sampler.halves
     if m == 0:
         return []
     weights = sampler.weights(sample)
     length = (sampler.end - sampler.start)[sample.interval]
-    way = _projected(sampler) - sample.v[:, n : n + m]
     own = (sampler.halves_outputs * weights).sum(axis=1)
     gains = np.zeros(len(own))
     for part in PARTS:
         v = sample.v.copy()
-        v[:, n : n + m] += part * way
+        v[:, n : n + m] += part * step
         there = (mapped(sampler.point.value, v, sample.d) * weights).sum(axis=1)
         gains = np.fmax(gains, (own - there) / length / sampler.power)
     gains[(sample.interval == 0) | (sample.interval == sampler.count - 1)] = 0.0  # slopes may be infinite at an end
     figure, worst = float(sampler.mean(gains)), int(np.argmax(gains * np.abs(sample.measure)))
-    name = sampler.control_names[int(np.argmax(np.abs(way[worst]) / sampler.control_sizes))]
+    name = sampler.control_names[int(np.argmax(np.abs(step[worst]) / sampler.control_sizes))]
     return [(threshold * figure / (ROOM * sampler.tolerance), float(sample.places[worst]), name,
              f"Other values of {name} could gain {figure:.1e} of the functional.")]  # fmt: skip
 
 
-def slopes_of_hamiltonian(sampler: Sampler) -> Array:
-    """H_u on the grid of halves, scaled: the relative change of H by a change of each control as large as itself."""
-    n, m = sampler.point.states, sampler.point.controls
-    return sampler.halves_gradient[:, n : n + m] * sampler.control_sizes / sampler.power
+def _projected_step(sampler: Sampler) -> Array:
+    """The step of the controls on the grid of halves against the gradient of H, inside their bounds.
 
-
-def control_steps(sampler: Sampler) -> Array:
-    """The step of the projected gradient on the grid of halves, relative to the size of each control."""
-    n, m = sampler.point.states, sampler.point.controls
-    return np.abs(_projected(sampler) - sampler.halves.v[:, n : n + m]) / sampler.control_sizes
-
-
-def _projected(sampler: Sampler) -> Array:
-    """The controls on the grid of halves after a step against the gradient of H, inside their bounds."""
+    Its length is that of the gradient if both are relative: H to its size, each control to its own.
+    """
     n, m = sampler.point.states, sampler.point.controls
     controls, sizes = sampler.halves.v[:, n : n + m], sampler.control_sizes
-    return np.clip(controls - sizes * _finite(slopes_of_hamiltonian(sampler)), sampler.bounds[2], sampler.bounds[3])
+    slopes = sampler.halves_gradient[:, n : n + m] * sizes / sampler.power
+    return np.asarray(np.clip(controls - sizes * _finite(slopes), *sampler.bounds[2:]) - controls)
 
 
 def _costates(sampler: Sampler) -> list[Finding]:
@@ -179,7 +172,9 @@ def _measures(sampler: Sampler) -> tuple[Array, NDArray[np.int64], Array]:
         for entry in chosen:
             put[:, columns[entry]] += slopes[:, entry] * multipliers[:, rows[entry] - n]
     gauss = np.array([i.scheme.family is Family.GAUSS for i in path.program.mesh.intervals])
-    at_place = np.isin(np.arange(1, sampler.count + 1), where.at_place)
+    at_place = np.zeros(sampler.count + 1, bool)
+    at_place[where.at_place] = True
+    at_place = at_place[1:]
     last = where.first[1:] - 1
     ending = np.flatnonzero(at_place & ~gauss)
     put[last[ending]] = _before_places(sampler, ending, put[last[ending]])

@@ -14,7 +14,7 @@ from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
 from solvers.checks.sampling import HALF_WEIGHTS, HALVES, Sampler
-from solvers.checks.scattered import Scattered
+from solvers.checks.scattered import Scattered, scattered
 from solvers.series import basis
 from solvers.transcription.collocation import Family, scheme
 from solvers.transcription.evaluation import mapped
@@ -30,34 +30,23 @@ def second_variation(sampler: Sampler) -> tuple[Scattered, Scattered]:
     mean square is taken.
     """
     program, where, point = sampler.path.program, sampler.path.program.layout, sampler.point
-    rows, columns, forms, norms = [], [], [], []
+    unit, shape = abs(program.value_scale), (where.size, where.size)
+    places, forms, norms = [], [], []
     for group in program.mesh.alike:
         members, degree = group.members, group.scheme.degree
         local, weights = grid_for(degree)
         trial = _trial(group.scheme.family, degree, point.states, point.controls, len(where.parameters))
         own = _local(sampler, members, degree)
-        block = (len(members), own.shape[1], own.shape[1])
-        rows.append(np.broadcast_to(own[:, :, None], block).ravel())
-        columns.append(np.broadcast_to(own[:, None, :], block).ravel())
-        forms.append(_condensed(trial, _bends(sampler, members, local, weights)).ravel())
-        norms.append(_squares(sampler, members, trial, weights).ravel())
-    row, column = np.concatenate(rows), np.concatenate(columns)
-    scale = program.scale[row] * program.scale[column] / abs(program.value_scale)
-    at_places, shape = _at_places(sampler), (where.size, where.size)
-    hessian = Scattered(
-        shape,
-        np.concatenate([row, at_places.rows]),
-        np.concatenate([column, at_places.columns]),
-        np.concatenate([np.concatenate(forms) * scale, at_places.values]),
-    )
-    numbers = np.full(len(where.parameters), sampler.value_size / abs(program.value_scale))
-    metric = Scattered(
-        shape,
-        np.concatenate([row, where.parameters]),
-        np.concatenate([column, where.parameters]),
-        np.concatenate([np.concatenate(norms) * scale, numbers]),
-    )
-    return hessian, metric
+        scale = program.scale[own]
+        units = scale[:, :, None] * scale[:, None, :] / unit
+        places.append((own[:, :, None] * where.size + own[:, None, :]).ravel())
+        forms.append((_condensed(trial, _bends(sampler, members, local, weights)) * units).ravel())
+        norms.append((_squares(sampler, members, trial, weights) * units).ravel())
+    place = np.concatenate(places)
+    hessian = Scattered(shape, place, np.concatenate(forms)).plus(_at_places(sampler))
+    numbers = np.full(len(where.parameters), sampler.value_size / unit)
+    metric = Scattered(shape, place, np.concatenate(norms))
+    return hessian, metric.plus(scattered(shape, where.parameters, where.parameters, numbers))
 
 
 def grid_for(degree: int) -> tuple[Array, Array]:
@@ -114,12 +103,17 @@ def _trial(family: Family, degree: int, n: int, m: int, parameters: int) -> Arra
 def _local(sampler: Sampler, members: Indices, degree: int) -> Indices:
     """Where the variables of each interval stand in z (G x D), in the order of the trial's columns."""
     where = sampler.path.program.layout
+    n, m = where.nodes.shape[1], where.controls.shape[1]
     points = where.first[members][:, None] + np.arange(degree)
-    stretch = sampler.stretch[members]
-    count = len(members)
-    ends = np.column_stack([where.places[stretch], where.places[stretch + 1]])
-    own = [where.nodes[members], *(part[points].reshape(count, -1) for part in (where.inner, where.controls))]
-    return np.hstack([*own, ends, np.tile(where.parameters, (count, 1))]).astype(np.int64)
+    stretch, count = sampler.stretch[members], len(members)
+    own = np.empty((count, (degree + 1) * n + degree * m + 2 + len(where.parameters)), dtype=np.int64)
+    controls, ends = (degree + 1) * n, (degree + 1) * n + degree * m
+    own[:, :n] = where.nodes[members]
+    own[:, n:controls] = where.inner[points].reshape(count, -1)
+    own[:, controls:ends] = where.controls[points].reshape(count, -1)
+    own[:, ends], own[:, ends + 1] = where.places[stretch], where.places[stretch + 1]
+    own[:, ends + 2 :] = where.parameters
+    return own
 
 
 def _condensed(trial: Array, forms: Array) -> Array:
@@ -140,4 +134,4 @@ def _at_places(sampler: Sampler) -> Scattered:
     row = program.layout.end_gather[np.concatenate([rows, columns[mixed]])]
     column = program.layout.end_gather[np.concatenate([columns, rows[mixed]])]
     scale = program.scale[row] * program.scale[column] / abs(program.value_scale)
-    return Scattered((program.layout.size,) * 2, row, column, np.concatenate([numbers, numbers[mixed]]) * scale)
+    return scattered((program.layout.size,) * 2, row, column, np.concatenate([numbers, numbers[mixed]]) * scale)

@@ -78,11 +78,11 @@ def best_trials(sampler: Sampler) -> tuple[Array, Array, NDArray[np.int64]]:
         trials = _trials(sampler, j)
         v = np.tile(sample.v, (len(trials), 1))
         v[:, n + j] = trials.ravel()
-        made = mapped(sampler.point.value, v, np.tile(sample.d, (len(trials), 1)))
-        there = _hamiltonian(sampler, made, np.tile(weights, (len(trials), 1))).reshape(trials.shape) / length
+        made = mapped(sampler.point.value, v, np.tile(sample.d, (len(trials), 1))).reshape(*trials.shape, -1)
+        there = _hamiltonian(sampler, made, weights) / length
         first = np.minimum((trials - sample.v[:, n + j]) * slopes[:, j], 0.0)
-        gains = np.nan_to_num((own - there + first) / sampler.power, nan=0.0, posinf=0.0, neginf=0.0)
-        gains[~admissible(made).reshape(trials.shape)] = 0.0
+        gains = (own - there + first) / sampler.power
+        gains[~(np.isfinite(gains) & admissible(made))] = 0.0
         chosen = np.argmax(gains, axis=0), np.arange(len(own))
         better = gains[chosen] > best
         best[better], value[better], control[better] = gains[chosen][better], trials[chosen][better], j
@@ -93,8 +93,8 @@ def _hamiltonian(sampler: Sampler, outputs: Array, weights: Array) -> Array:
     """H per fraction without the constraints."""
     n, c = sampler.point.states, sampler.point.constraints
     terms = outputs * weights
-    terms[:, n : n + c] = 0.0
-    return np.asarray(terms.sum(axis=1))
+    terms[..., n : n + c] = 0.0
+    return np.asarray(terms.sum(axis=-1))
 
 
 def _trials(sampler: Sampler, j: int) -> Array:
@@ -104,8 +104,9 @@ def _trials(sampler: Sampler, j: int) -> Array:
     if np.isfinite(upper - lower):
         return np.repeat((lower + SHARES * (upper - lower))[:, None], len(own), axis=1)
     size = sampler.control_sizes[j]
-    steps = [own + side * step * size for step in STEPS for side in (-1.0, 1.0)]
-    return np.asarray(np.clip(np.stack([*steps, -own, np.zeros_like(own)]), lower, upper))
+    both = np.column_stack([-STEPS, STEPS]).ravel()
+    trials = np.vstack([own + both[:, None] * size, -own, np.zeros_like(own)])
+    return np.asarray(np.clip(trials, lower, upper))
 
 
 class _Admissible:
@@ -118,5 +119,5 @@ class _Admissible:
         self.lower, self.upper = np.array(limits).reshape(-1, 2).T
 
     def __call__(self, outputs: Array) -> NDArray[np.bool_]:
-        values = outputs[:, self.rows]
-        return np.asarray(np.all((values >= self.lower) & (values <= self.upper), axis=1))
+        values = outputs[..., self.rows]
+        return np.asarray(np.all((values >= self.lower) & (values <= self.upper), axis=-1))
