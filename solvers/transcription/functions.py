@@ -118,7 +118,8 @@ class Environment:
 
     def formula(self, tree: Node) -> ca.SX:
         """The tree as an expression of the symbols."""
-        return ca.SX(evaluate(tree, self._look_up, self._operations, self._value_at))
+        value = evaluate(tree, self._look_up, self._operations, self._value_at)
+        return value if isinstance(value, ca.SX) else ca.SX(value)  # a copy would cost more than a sum
 
     def _look_up(self, name: str, order: int) -> ca.SX:
         if name in self._abbreviations and name not in self._numbers:
@@ -130,14 +131,19 @@ class Environment:
         return self._symbols[name, order]
 
 
+def _entries(column: ca.SX) -> list[ca.SX]:
+    """The entries of a column, all at once, which costs as much as to ask for one."""
+    return column.elements()  # type: ignore[return-value]  # the stubs know no scalar symbols
+
+
 def compile_problem(lowered: Lowered) -> Compiled:
     """Build both functions; costs some milliseconds, once per problem."""
     problem = lowered.problem
     constants = ca.SX.sym("c", len(problem.constants))
     parameters = ca.SX.sym("p", len(problem.parameters))
     numbers: dict[str, ca.SX] = {"pi": ca.SX(pi)}
-    numbers |= {c.name: constants[i] for i, c in enumerate(problem.constants)}
-    numbers |= {p.name: parameters[i] for i, p in enumerate(problem.parameters)}
+    numbers |= dict(zip((c.name for c in problem.constants), _entries(constants), strict=True))
+    numbers |= dict(zip((p.name for p in problem.parameters), _entries(parameters), strict=True))
     integrands: list[Node] = []
     conditions, fixed, rims, end = _end_function(lowered, numbers, parameters, constants, integrands)
     point, pointwise, bounds = _point_function(lowered, numbers, parameters, constants, integrands)
@@ -153,7 +159,7 @@ def _point_function(
     u = ca.SX.sym("u", len(lowered.controls))
     start, end, fraction = ca.SX.sym("a"), ca.SX.sym("b"), ca.SX.sym("s")
     length = end - start
-    symbols = {q: x[i] for i, q in enumerate(lowered.states)} | {q: u[i] for i, q in enumerate(lowered.controls)}
+    symbols = dict(zip((*lowered.states, *lowered.controls), (*_entries(x), *_entries(u)), strict=True))
     lookups = Lookups()
     here = Environment(lowered, symbols, numbers | {problem.independent: start + fraction * length}, lookups)
     rates = [length * here.formula(Name(name, order + 1)) for name, order in lowered.states]
@@ -190,11 +196,11 @@ def _end_function(
     environments = [
         Environment(
             lowered,
-            {q: values[i][k] for k, q in enumerate(lowered.states)},
-            numbers | {problem.independent: places[i]},
+            dict(zip(lowered.states, _entries(there), strict=True)),
+            numbers | {problem.independent: place},
             lookups,
         )
-        for i in range(len(problem.places))
+        for there, place in zip(values, _entries(places), strict=True)
     ]
 
     ordinals = {id(place.tree): index for index, place in enumerate(problem.places)}  # most trees are the very places
@@ -218,7 +224,7 @@ def _end_function(
             trees.append(_lift_integrals(body, integrands))
     term = _lift_integrals(terminal(problem) or Number(0.0, "0"), integrands)
     totals = ca.SX.sym("q", len(integrands))
-    numbers = numbers | {_total(k): totals[k] for k in range(len(integrands))}
+    numbers = numbers | {_total(k): total for k, total in enumerate(_entries(totals))}
     outside = Environment(lowered, {}, numbers, lookups, value_at)
     outputs = ca.vertcat(*(outside.formula(tree) for tree in (*trees, term)))
     y = ca.vertcat(*values, places, parameters, totals)
