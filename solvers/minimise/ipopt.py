@@ -294,16 +294,13 @@ def _watcher(program: Bounded, watch: Callable[[Iterate], bool], errors: list[Ex
     """Hears of every iteration, and can ask for a stop."""
     sizes = {"f": 1, "x": len(program.lower), "lam_x": len(program.lower), "g": len(program.row_lower),
              "lam_g": len(program.row_lower), "lam_p": 0}  # fmt: skip
-    names = [ca.nlpsol_out(k) for k in range(ca.nlpsol_n_out())]
     numbers = count()
 
-    def hear(*given: Array) -> float:
-        now = dict(zip(names, given, strict=True))
-        violation = np.maximum(program.row_lower - now["g"], now["g"] - program.row_upper)
-        worst = float(np.max(violation, initial=0.0))
-        return float(watch(Iterate(next(numbers), float(now["f"][0]), worst)) or bool(errors))
+    def hear(_: Array, f: Array, g: Array, *__: Array) -> float:
+        worst = np.maximum(program.row_lower - g, g - program.row_upper).max(initial=0.0)
+        return float(watch(Iterate(next(numbers), float(f[0]), float(worst))) or bool(errors))
 
-    inputs = {name: ca.Sparsity.dense(sizes[name], 1) for name in names}
+    inputs = {name: ca.Sparsity.dense(sizes[name], 1) for name in ca.nlpsol_out()}
     return _Called("watcher", inputs, {"ret": (ca.Sparsity.dense(1, 1), hear)}, errors)
 
 

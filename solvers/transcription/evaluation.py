@@ -68,7 +68,8 @@ def mapped(function: ca.Function, *arguments: Array) -> Array:
         size = chosen.stop - first
         for memory, given in zip(bound.inputs, arguments, strict=True):
             memory[:size] = given[chosen]
-            memory[size:] = memory[0]
+            if size < step:
+                memory[size:] = memory[0]
         bound.evaluate()
         result[chosen] = bound.outputs[:size]
     return result
