@@ -53,7 +53,7 @@ def point_weights(path: Trajectory) -> Array:
     program = path.program
     where, rows, point = program.layout, program.rows, program.compiled.point
     count = len(where.fractions)
-    widths = np.repeat([i.width for i in program.mesh.intervals], np.diff(where.first))
+    widths = program.mesh.widths[program.mesh.owner]
     multipliers = path.row_multipliers
     sign = np.sign(program.value_scale)
     return np.hstack([

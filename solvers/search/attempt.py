@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from functools import lru_cache
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -22,6 +24,7 @@ FIRST_DEGREE = 4
 SOLVED = (Outcome.SOLVED, Outcome.ACCEPTABLE)
 
 
+@lru_cache
 def first_mesh(stretches: int, count: int = FIRST_INTERVALS) -> Mesh:
     """A coarse mesh; its outermost intervals have Gauss points: no end is touched, none is favoured."""
     each = count if stretches == 1 else max(count // stretches, 2 if stretches <= count else 1)

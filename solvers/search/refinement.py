@@ -25,6 +25,7 @@ from solvers.transcription.mesh import Interval, Mesh, interval
 from solvers.transcription.trajectory import Trajectory, sizes_of
 
 Array = NDArray[np.float64]
+Indices = NDArray[np.int64]
 
 HIGHEST_DEGREE = 11
 SMOOTH = 0.45
@@ -73,26 +74,22 @@ def estimate(path: Trajectory) -> Estimate:
     mesh = path.program.mesh
     weights = np.minimum(1.0, np.diff(path.breaks) / (path.breaks[-1] - path.breaks[0]))
     state_sizes, control_sizes = sizes_of(path)
-    errors = np.zeros(len(mesh.intervals))
+    states, controls = path.state_modes / state_sizes, path.control_modes / control_sizes * weights[:, None, None]
+    errors, worst = _tails(states, mesh.counts + 1)
+    for stretch, index in calm & {(stretch, index) for stretch in range(mesh.stretches) for index in loose}:
+        kept = mesh.stretch == stretch
+        allowed = _tails(controls[kept][:, :, [index]], (mesh.counts[kept] + 1) // 2)[0]
+        errors[kept] = np.fmax(errors[kept], allowed)
+    controls[:, :, loose] = 0.0
+    control_errors, control_worst = _tails(controls, mesh.counts)
+    bending = control_errors > NOISE * errors  # else its bends are those of its rounding
     shapes, bends = [], []
-    states, controls = path.state_modes / state_sizes, path.control_modes / control_sizes
-    for k, interval_ in enumerate(mesh.intervals):
-        columns = states[k, : interval_.scheme.degree + 1]
-        error, worst = _tail(columns)
-        shape = bend = columns[:, worst] if columns.shape[1] else np.zeros(1)
-        scaled = controls[k, : interval_.scheme.degree] * weights[k]
-        kept = [index for index in loose if (interval_.stretch, index) in calm]
-        if kept:
-            error = max(error, _tail(scaled[: (len(scaled) + 1) // 2, kept])[0])
-        scaled[:, loose] = 0.0
-        control_error, control_worst = _tail(scaled)
-        if control_error > NOISE * error:  # else its bends are those of its rounding
-            bend = scaled[:, control_worst]
-        if control_error > error:
-            error, shape = control_error, bend
-        errors[k] = error
-        shapes.append(shape)
+    for k, count in enumerate(mesh.counts):
+        shape = states[k, : count + 1, worst[k]] if states.shape[2] else np.zeros(1)
+        bend = controls[k, :count, control_worst[k]] if bending[k] else shape
+        shapes.append(bend if control_errors[k] > errors[k] else shape)
         bends.append(bend)
+    errors = np.fmax(errors, control_errors)
     gained = _add_excess(path, errors)
     return Estimate(errors, tuple(shapes), tuple(bends), gained)
 
@@ -137,9 +134,8 @@ def _bodies_between(path: Trajectory, states: Array) -> Array:
     lower, upper = quantity_bounds(compiled)[2:]
     controls = basis(BETWEEN, path.control_modes.shape[1] - 1) @ path.control_modes
     shape = (*states.shape[:2], 1)
-    starts = np.array([path.places[i.stretch] for i in mesh.intervals])[:, None, None]
-    ends = np.array([path.places[i.stretch + 1] for i in mesh.intervals])[:, None, None]
-    fractions = np.array([i.start + i.width * (BETWEEN + 1) / 2 for i in mesh.intervals])[:, :, None]
+    starts, ends = (path.places[mesh.stretch + side][:, None, None] for side in (0, 1))
+    fractions = (mesh.starts[:, None] + mesh.widths[:, None] * (BETWEEN + 1) / 2)[:, :, None]
     parameters = np.broadcast_to(path.parameters, (*shape[:2], len(path.parameters)))
     constants = np.broadcast_to(np.array(compiled.constants), (*shape[:2], len(compiled.constants)))
     v = np.concatenate([states, np.clip(controls, lower, upper), np.broadcast_to(starts, shape),
@@ -151,15 +147,16 @@ def _bodies_between(path: Trajectory, states: Array) -> Array:
     return outputs[:, first : first + compiled.point.constraints].reshape(*shape[:2], -1)
 
 
-def _tail(columns: Array) -> tuple[float, int]:
-    """The largest last coefficients, and the column that has them."""
-    if columns.shape[1] == 0:
-        return 0.0, 0
-    last = np.abs(columns[-1])
-    if len(columns) > 2:
-        last = np.maximum(last, 0.1 * np.abs(columns[-2]))
-    worst = int(np.argmax(last))
-    return float(last[worst]), worst
+def _tails(modes: Array, lengths: Indices) -> tuple[Array, Indices]:
+    """The largest last coefficients in each interval, and which quantity has them; `lengths` are how many there are."""
+    each = np.arange(len(modes))
+    if modes.shape[2] == 0:
+        return np.zeros(len(modes)), np.zeros_like(each)
+    last = np.abs(modes[each, lengths - 1])
+    before = 0.1 * np.abs(modes[each, np.maximum(lengths - 2, 0)])
+    last = np.where(lengths[:, None] > 2, np.maximum(last, before), last)
+    worst = last.argmax(axis=1)
+    return last[each, worst], worst
 
 
 def _fall(modes: Array) -> float:

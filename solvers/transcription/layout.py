@@ -8,7 +8,6 @@ import numpy as np
 from numpy.typing import NDArray
 
 from solvers.formula.nodes import Name
-from solvers.transcription.collocation import Family
 from solvers.transcription.functions import Compiled
 from solvers.transcription.mesh import Mesh
 from solvers.transcription.scaling import Scales
@@ -69,14 +68,12 @@ def layout(compiled: Compiled, mesh: Mesh) -> Layout:
     """Give every quantity its place in z."""
     problem = compiled.lowered.problem
     n, m = compiled.point.states, compiled.point.controls
-    degrees = np.array([i.scheme.degree for i in mesh.intervals])
-    radau = np.array([i.scheme.family is Family.RADAU for i in mesh.intervals])
+    degrees, owner, radau = mesh.counts, mesh.owner, ~mesh.gauss
     own = degrees - radau  # points whose states are not shared with the next node
     sizes = n + own * n + degrees * m
     starts = np.concatenate([[0], np.cumsum(sizes)])
     nodes = starts[:, None] + np.arange(n)[None, :]
     first = np.concatenate([[0], np.cumsum(degrees)])
-    owner = np.repeat(np.arange(len(degrees)), degrees)
     local = np.arange(first[-1]) - first[owner]
     inner = (starts[owner] + n + local * n)[:, None] + np.arange(n)[None, :]
     shared = radau[owner] & (local == degrees[owner] - 1)
@@ -94,26 +91,23 @@ def layout(compiled: Compiled, mesh: Mesh) -> Layout:
             places[index] = position
             position += 1
     integrals = position + np.arange(compiled.point.integrals)
-    widths = np.array([i.width for i in mesh.intervals])
-    lefts = np.array([i.start for i in mesh.intervals])
-    fractions = lefts[owner] + widths[owner] * np.concatenate([i.scheme.points for i in mesh.intervals])
-    measures = widths[owner] * np.concatenate([i.scheme.weights for i in mesh.intervals])
-    stretch = np.array([i.stretch for i in mesh.intervals])
-    at_place = np.concatenate([[0], np.flatnonzero(np.diff(stretch)) + 1, [len(widths)]])
-    own_stretch = stretch[owner]
-    gather = np.hstack([inner, controls, places[own_stretch][:, None], places[own_stretch + 1][:, None],
+    widths = mesh.widths[owner]
+    fractions = mesh.starts[owner] + widths * mesh.local
+    measures = widths * mesh.weights
+    at_place = np.concatenate([[0], np.flatnonzero(np.diff(mesh.stretch)) + 1, [len(degrees)]])
+    stretch = mesh.stretch[owner]
+    gather = np.hstack([inner, controls, places[stretch][:, None], places[stretch + 1][:, None],
                         np.tile(parameters, (len(owner), 1))]).astype(np.int64)  # fmt: skip
     end_gather = np.concatenate([nodes[at_place].ravel(), places, parameters, integrals]).astype(np.int64)
     return Layout(position + compiled.point.integrals, nodes, inner, controls, places, parameters, integrals, first,
-                  fractions, measures, own_stretch, at_place, gather, end_gather)  # fmt: skip
+                  fractions, measures, stretch, at_place, gather, end_gather)  # fmt: skip
 
 
 def row_order(compiled: Compiled, mesh: Mesh, where: Layout) -> Rows:
     """Give every constraint its row."""
     count, point = len(where.fractions), compiled.point
-    gauss = sum(i.scheme.family is Family.GAUSS for i in mesh.intervals)
     ends = count * point.states
-    pointwise = ends + gauss * point.states
+    pointwise = ends + int(mesh.gauss.sum()) * point.states
     rims = pointwise + count * point.constraints
     integrals = rims + len(compiled.rims) + len(calm_entries(compiled, mesh))
     conditions = integrals + point.integrals

@@ -16,6 +16,8 @@ from numpy.typing import NDArray
 
 from solvers.transcription.collocation import Family, Scheme, scheme
 
+Array = NDArray[np.float64]
+
 
 @dataclass(frozen=True, slots=True)
 class Interval:
@@ -45,7 +47,47 @@ class Mesh:
     @property
     def points(self) -> int:
         """How many collocation points there are."""
-        return sum(interval.scheme.degree for interval in self.intervals)
+        return len(self.owner)
+
+    @cached_property
+    def counts(self) -> NDArray[np.int64]:
+        """How many points each interval has: the degree of its scheme."""
+        return np.array([interval.scheme.degree for interval in self.intervals])
+
+    @cached_property
+    def owner(self) -> NDArray[np.int64]:
+        """The interval of every point."""
+        return np.repeat(np.arange(len(self.counts)), self.counts)
+
+    @cached_property
+    def stretch(self) -> NDArray[np.int64]:
+        """The stretch of every interval."""
+        return np.array([interval.stretch for interval in self.intervals])
+
+    @cached_property
+    def starts(self) -> Array:
+        """Where every interval starts, as a fraction of its stretch."""
+        return np.array([interval.start for interval in self.intervals])
+
+    @cached_property
+    def widths(self) -> Array:
+        """The width of every interval, as a fraction of its stretch."""
+        return np.array([interval.width for interval in self.intervals])
+
+    @cached_property
+    def gauss(self) -> NDArray[np.bool_]:
+        """Which intervals have Gauss points."""
+        return np.array([interval.scheme.family is Family.GAUSS for interval in self.intervals])
+
+    @cached_property
+    def local(self) -> Array:
+        """The place of every point in its interval, from 0 to 1."""
+        return np.concatenate([interval.scheme.points for interval in self.intervals])
+
+    @cached_property
+    def weights(self) -> Array:
+        """The quadrature weight of every point in its interval."""
+        return np.concatenate([interval.scheme.weights for interval in self.intervals])
 
     @property
     def stretches(self) -> int:
@@ -56,23 +98,21 @@ class Mesh:
     def alike(self) -> list[Alike]:
         """The intervals by scheme."""
         owners = np.array([id(i.scheme) for i in self.intervals])
-        degrees = np.array([i.scheme.degree for i in self.intervals])
-        first = np.cumsum(degrees) - degrees
+        first = np.cumsum(self.counts) - self.counts
         groups = []
         for key, scheme_ in {id(i.scheme): i.scheme for i in self.intervals}.items():
             members = np.flatnonzero(owners == key)
             groups.append(Alike(scheme_, members, first[members][:, None] + np.arange(scheme_.degree)))
         return groups
 
-    def breaks(self, places: np.ndarray) -> np.ndarray:
+    def breaks(self, places: Array) -> Array:
         """The ends of all intervals as values of the independent variable, from the values of the places."""
-        starts = [places[i.stretch] + i.start * (places[i.stretch + 1] - places[i.stretch]) for i in self.intervals]
-        return np.array([*starts, places[-1]])
+        lengths = places[self.stretch + 1] - places[self.stretch]
+        return np.append(places[self.stretch] + self.starts * lengths, places[-1])
 
     def degrees(self) -> tuple[int, int]:
         """The lowest and the highest degree."""
-        degrees = [interval.scheme.degree for interval in self.intervals]
-        return min(degrees), max(degrees)
+        return int(self.counts.min()), int(self.counts.max())
 
 
 def interval(stretch: int, start: float, end: float, family: Family, degree: int) -> Interval:

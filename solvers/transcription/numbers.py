@@ -70,9 +70,8 @@ class Numbers:
         self.target[:, :n] = rows.defects + ordinal * n + np.arange(n)
         self.target[:, n : n + c] = rows.pointwise + ordinal * c + np.arange(c)
         self.target[:, n + c :] = rows.integrals + np.arange(q)
-        widths = np.repeat([i.width for i in placed.mesh.intervals], np.diff(where.first))
         self.factor = np.ones((self.count, n + c + q))
-        self.factor[:, :n] = -widths[:, None]
+        self.factor[:, :n] = -placed.mesh.widths[placed.mesh.owner, None]
         self.factor[:, n + c :] = -where.measures[:, None]
         self.factor /= placed.row_scale[self.target]
         self.cost = where.measures * self.value_factor

@@ -15,7 +15,6 @@ import numpy as np
 from numpy.typing import NDArray
 
 from solvers.problem import Seek
-from solvers.transcription.collocation import Family
 from solvers.transcription.functions import Compiled
 from solvers.transcription.layout import Layout, calm_entries, row_order, spread
 from solvers.transcription.limits import limits
@@ -68,10 +67,9 @@ def restated(program: Program, compiled: Compiled) -> Program:
 
 def _row_scale(compiled: Compiled, mesh: Mesh, where: Layout, scales: Scales, row_sizes: RowSizes) -> Array:
     """One scale for every row."""
-    gauss = sum(i.scheme.family is Family.GAUSS for i in mesh.intervals)
     linear = [control for control, _, _ in (*compiled.rims, *calm_entries(compiled, mesh))]
     return np.concatenate([
-        np.tile(scales.states, len(where.fractions) + gauss),
+        np.tile(scales.states, len(where.fractions) + int(mesh.gauss.sum())),
         np.tile(row_sizes.pointwise, len(where.fractions)),
         scales.controls[linear],
         scales.integrals,

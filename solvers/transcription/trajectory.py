@@ -18,7 +18,6 @@ from solvers.curve import Curve
 from solvers.minimise.ipopt import Minimum, Start
 from solvers.problem import Problem, Seek
 from solvers.series import basis
-from solvers.transcription.collocation import Family
 from solvers.transcription.functions import Compiled
 from solvers.transcription.layout import Layout, row_order
 from solvers.transcription.limits import constants_of, number
@@ -82,15 +81,16 @@ class Trajectory:
 
     def pieces(self, modes: Array) -> Iterable[Array]:
         """Coefficients of one quantity (N x largest degree) without the zeros that fill them up."""
-        own = modes.shape[1] - max(i.scheme.degree for i in self.program.mesh.intervals)  # one more for states
-        return (part[: i.scheme.degree + own] for part, i in zip(modes, self.program.mesh.intervals, strict=True))
+        counts = self.program.mesh.counts
+        own = modes.shape[1] - counts.max()  # one more for states
+        return (part[: count + own] for part, count in zip(modes, counts, strict=True))
 
 
 def _modes(mesh: Mesh, values: Array, nodes: Array | None = None) -> Array:
     """Coefficients in every interval from the values at its points, and at its left node where there is one."""
     groups = mesh.alike
     own = 0 if nodes is None else 1
-    modes = np.zeros((len(mesh.intervals), max(g.scheme.degree for g in groups) + own, values.shape[1]))
+    modes = np.zeros((len(mesh.intervals), mesh.counts.max() + own, values.shape[1]))
     for group in groups:
         inside = values[group.points]
         if nodes is None:
@@ -114,7 +114,6 @@ def trajectory(program: Program, minimum: Minimum) -> Trajectory:
     )
     rows = minimum.multipliers / program.row_scale * sign_and_size  # multipliers of the rows in SI
     defects = rows[: count * point.states].reshape(count, point.states)
-    weights = np.concatenate([i.scheme.weights for i in program.mesh.intervals])
     constraints = rows[program.rows.pointwise : program.rows.rims].reshape(count, point.constraints)
     return Trajectory(
         program=program,
@@ -127,7 +126,7 @@ def trajectory(program: Program, minimum: Minimum) -> Trajectory:
         nodes=z[where.nodes],
         states=z[where.inner],
         controls=z[where.controls],
-        costates=-defects / weights[:, None],
+        costates=-defects / program.mesh.weights[:, None],
         multipliers=constraints / (where.measures * where.lengths(places))[:, None],
         bound_multipliers=bounds * sign_and_size / scale,
         row_multipliers=rows,
@@ -218,11 +217,9 @@ def carry(path: Trajectory, mesh: Mesh, where: Layout) -> Carried:
     _draw(z, path, where, mesh.breaks(path.places), points)
 
     rows = np.zeros(order.count)
-    weights = np.concatenate([i.scheme.weights for i in mesh.intervals])
     costates = at_points(path.breaks, path.costate_modes, points)
-    rows[: order.ends] = (-costates * weights[:, None]).ravel()
-    gauss = [k for k, i in enumerate(mesh.intervals) if i.scheme.family is Family.GAUSS]
-    rows[order.ends : order.pointwise] = costates[where.first[np.array(gauss, int) + 1] - 1].ravel()
+    rows[: order.ends] = (-costates * mesh.weights[:, None]).ravel()
+    rows[order.ends : order.pointwise] = costates[where.first[np.flatnonzero(mesh.gauss) + 1] - 1].ravel()
     measures = where.measures * where.lengths(path.places)
     density = at_points(path.breaks, path.multiplier_modes, points)
     rows[order.pointwise : order.rims] = (density * measures[:, None]).ravel()
