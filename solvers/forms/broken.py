@@ -18,9 +18,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from solvers.checks import weierstrass
+from solvers.checks.composition import Bend, Shape, shape_of
+from solvers.checks.convexity import known, unfolding
 from solvers.checks.sampling import Sampler
 from solvers.deadline import Deadline
-from solvers.formula.nodes import Name
+from solvers.formula.nodes import At, Name
 from solvers.problem import Parameter, Place, Problem, Seek
 from solvers.search.pursuit import go_on, pursue
 from solvers.search.record import End, Pursuit
@@ -46,8 +48,10 @@ def with_corner(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursu
     plain = not problem.dynamics and len(problem.places) == 2 and problem.seek is not Seek.STATIONARY
     if not base.solved or not plain or len(problem.unknowns) != 1 or problem.unknowns[0].order != 1:
         return None
+    path = base.paths[-1]
+    if _convex_in_the_slope(problem, float(path.places[0]), float(path.places[-1])):
+        return None
     with np.errstate(all="ignore"):
-        path = base.paths[-1]
         sampler = Sampler(path)
         if weierstrass.check(sampler).status is not Status.FAILED:
             return None
@@ -65,6 +69,23 @@ def with_corner(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursu
         best.steps[:0] = base.steps
         best.iterations += base.iterations
     return best
+
+
+def _convex_in_the_slope(problem: Problem, first: float, last: float) -> bool:
+    """Whether the integrand, with all multiples of integrals that conditions hold, is proved to be convex (for a
+    maximum: concave) in the slope, whatever the rest is: then no other slope gains anything anywhere."""
+    whole = known(problem, {c.name: c.value for c in problem.constants}, first, last)
+    slope, unfold = (problem.unknowns[0].name, 1), unfolding(problem)
+
+    def leaf(node: Name | At) -> Shape:
+        own = isinstance(node, Name) and (node.name, node.order) == slope
+        return whole(node) if own else replace(whole(node), bend=Bend.GIVEN)
+
+    if problem.integrand is None or not first < last:
+        return False
+    shape = shape_of(problem.integrand, leaf, unfold)
+    bends = shape.concave if problem.seek is Seek.MAXIMUM else shape.convex
+    return bends and all(shape_of(condition.body, leaf, unfold).affine for condition in problem.integrals)
 
 
 def _better(pursuit: Pursuit, base: Pursuit, sign: float) -> bool:
@@ -87,8 +108,8 @@ def _pair(sampler: Sampler) -> tuple[float, float] | None:
     v, d = (np.repeat(part[worst][None], SLOPES, axis=0) for part in (sampler.halves.v, sampler.halves.d))
     v[:, n] = slopes
     values = sampler.sign * mapped(sampler.point.value, v, d)[:, -1]
-    known = np.isfinite(values)
-    corners = _hull(slopes[known], values[known])
+    defined = np.isfinite(values)
+    corners = _hull(slopes[defined], values[defined])
     left, right = corners[corners <= own].max(initial=-np.inf), corners[corners > own].min(initial=np.inf)
     if not np.isfinite(left + right) or right - left < SAME * 2 * reach + 2 * (slopes[1] - slopes[0]):
         return None

@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 
 from solvers.deadline import in_seconds
-from solvers.forms.broken import _hull, with_corner
+from solvers.forms.broken import _convex_in_the_slope, _hull, with_corner
 from solvers.search.pursuit import pursue
 from solvers.search.structure import present_switches
 from solvers.solution import Verdict
@@ -49,6 +49,28 @@ def test_a_maximum_has_corners_too():
 )
 def test_no_corner_where_it_does_not_help(integrand):
     assert broken(WELLS | {"functional": {"integrand": integrand}, "endpoints": ["y(0) = 0", "y(3) = 0"]}) is None
+
+
+@pytest.mark.parametrize(
+    ("members", "convex"),
+    [
+        ({"integrand": "(1 + x^2)*y'^2 - y^4"}, True),  # nothing but the slope has to bend well
+        ({"integrand": "y*y'^2"}, False),  # y may be negative
+        ({"integrand": "exp(y)*sqrt(1 + y'^2)"}, True),
+        ({"integrand": "(y'^2 - 1)^2"}, False),
+        ({"integrand": "-y'^2"}, False),
+        ({"integrand": "-y'^2", "seek": "maximum"}, True),
+    ],
+)
+def test_where_all_slopes_bend_one_way_no_corner_is_looked_for(members, convex):
+    assert _convex_in_the_slope(shape(functional=members), 0.0, 1.0) is convex
+    assert not _convex_in_the_slope(shape(functional=members), 1.0, 0.0)  # backwards the integral changes its sign
+
+
+@pytest.mark.parametrize(("integral", "convex"), [("y^3", True), ("y'", True), ("sqrt(1 + y'^2)", False)])
+def test_integrals_count_with_multiples_of_any_sign(integral, convex):
+    problem = shape(functional={"integrand": "y'^2"}, constraints=[f"integral({integral}) = 2"])
+    assert _convex_in_the_slope(problem, 0.0, 1.0) is convex
 
 
 def test_the_least_value_is_proved_and_the_corner_said():
