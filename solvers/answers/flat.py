@@ -82,7 +82,7 @@ def _directions(sampler: Sampler, second: Second) -> Array:
 
     norm = reduced(_norm(sampler, second)[np.ix_(columns, columns)], kernel)
     norm += 1e-12 * np.trace(norm) / len(norm) * np.eye(len(norm))
-    for hessian in (second.hessian, inertia.hessian_of_program(sampler)):
+    for hessian in (second.hessian, inertia.hessian_of_program(sampler.path)):
         bend = reduced(hessian.dense()[np.ix_(columns, columns)], kernel)
         values, vectors = eigh((bend + bend.T) / 2, norm)
         kernel = kernel @ vectors[:, np.abs(values) <= FLAT]

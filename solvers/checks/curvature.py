@@ -81,7 +81,7 @@ def _decided(sampler: Sampler, deadline: Deadline, margin: float) -> Check:
     if negative is None:
         return Check(NAME, Status.NOT_APPLICABLE, "The second variation could not be decided: its matrix is singular.")
     if negative.negative > 0 and negative.directions is not None:
-        again = replace(second, hessian=inertia.hessian_of_program(sampler))
+        again = replace(second, hessian=inertia.hessian_of_program(sampler.path))
         share = min(max(inertia.proved(form, free, rows, direction) for form in (second, again))
                     for direction in negative.directions.T)  # fmt: skip
         if share < -margin:

@@ -22,6 +22,8 @@ from solvers.checks.scattered import Scattered, both_triangles, scattered
 from solvers.checks.variation import second_variation
 from solvers.deadline import FOREVER, Deadline
 from solvers.search.signals import SWITCH
+from solvers.transcription.layout import Layout
+from solvers.transcription.trajectory import Trajectory
 
 Array = NDArray[np.float64]
 Flags = NDArray[np.bool_]
@@ -111,12 +113,17 @@ def second_order(sampler: Sampler) -> Second:
     border[where.nodes[-2].min(initial=where.size) :] = True  # the last interval, places, parameters, integrals
     if not sampler.point.states:
         border[where.controls[where.first[-2], 0] :] = True
+    return Second(hessian, jacobian, metric, fixed, resting, pushed, equalities, at_limit, forced,
+                  long, border, _owners(where))  # fmt: skip
+
+
+def _owners(where: Layout) -> Indices:
+    """The interval inside of which each variable is, or `SHARED`."""
     owner = np.full(where.size, SHARED)
-    interval = np.repeat(np.arange(sampler.count), np.diff(where.first))[:, None]
+    interval = np.repeat(np.arange(len(where.first) - 1), np.diff(where.first))[:, None]
     owner[where.inner] = owner[where.controls] = interval
     owner[where.nodes] = SHARED
-    return Second(hessian, jacobian, metric, fixed, resting, pushed, equalities, at_limit, forced,
-                  long, border, owner)  # fmt: skip
+    return owner
 
 
 SMOOTH = 1e-3
@@ -141,13 +148,29 @@ def smooth_junctions(sampler: Sampler) -> Indices:
     return np.array(found, dtype=np.int64)
 
 
-def hessian_of_program(sampler: Sampler) -> Scattered:
+def hessian_of_program(path: Trajectory) -> Scattered:
     """The second derivatives of the program's own Lagrangian, whose quadrature is at the collocation points."""
-    path, program = sampler.path, sampler.path.program
+    program = path.program
     multipliers = path.row_multipliers * program.row_scale / abs(program.value_scale)
     pattern, numbers = program.numbers.hessian_pattern, program.numbers
     upper = numbers.hessian(path.z / program.scale, 1.0, multipliers)
     return both_triangles(scattered(pattern.shape, pattern.rows, pattern.columns(), upper))
+
+
+def minimum_of_program(path: Trajectory) -> bool:
+    """Whether a stationary point of a program at which no inequality binds is its minimum among those nearby.
+
+    False also where that is not found out at once, in small full matrices.
+    """
+    program, numbers = path.program, path.program.numbers
+    free = program.lower < program.upper
+    if np.count_nonzero(free) > FEW:
+        return False
+    pattern = numbers.jacobian_pattern
+    jacobian = scattered(pattern.shape, pattern.rows, pattern.columns(), numbers.jacobian(path.z / program.scale))
+    rows = jacobian.dense()[program.row_lower == program.row_upper]
+    owner = np.where(free, _owners(program.layout), condensed.FIXED)
+    return condensed.count_negative(hessian_of_program(path).dense(), rows, owner, PENALTY, NOISE) == 0
 
 
 def _pushed_throughout(sampler: Sampler, resting: Flags, bounds: Array, least: Array) -> Flags:

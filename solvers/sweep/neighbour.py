@@ -12,9 +12,10 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from solvers.checks.inertia import minimum_of_program
 from solvers.deadline import Deadline
-from solvers.minimise.ipopt import CLOSE, FLOOR, Minimum, Start, minimise
-from solvers.minimise.newton import stationary_point
+from solvers.minimise.ipopt import CLOSE, FLOOR, Iterate, Minimum, Start, minimise
+from solvers.minimise.newton import minimum_nearby, stationary_point
 from solvers.problem import Problem, Seek
 from solvers.search import refinement
 from solvers.search.attempt import SOLVED
@@ -85,19 +86,22 @@ class Neighbours:
         values = dict(zip(self.names, at.tolist(), strict=True))
         start = self._start(near, at, far)
         program = restated(path.program, with_constants(_with_room(path.program, start), values))
+        straight: Minimum | None = None
         if problem.seek is Seek.STATIONARY:
-            minimum = stationary_point(program, start, lambda iterate: False)
+            minimum = stationary_point(program, start, _unheard)
         else:
-            minimum = minimise(program, start, deadline=self.deadline, options=CLOSE)
+            straight = minimum_nearby(program, start, _unheard)
+            minimum = straight or minimise(program, start, deadline=self.deadline, options=CLOSE)
         if minimum.outcome not in SOLVED:
             return Reached()
         found = trajectory(program, minimum)
+        convex = minimum.convex if straight is None else minimum_of_program(found)
         if present_switches(found) and (at_the_edge(found) or not held_rightly(found)):
             return Reached(path=found)
         pursuit = self._pursuit(near.pursuit, found, minimum, measured)
         if pursuit is None:
             return Reached(path=found)
-        return Reached(pursuit, found, minimum.convex, len(pursuit.paths) == 1)
+        return Reached(pursuit, found, convex, len(pursuit.paths) == 1)
 
     def _start(self, near: Solved, at: Array, far: Solved | None) -> Start:
         """The neighbour's solution continued to another point."""
@@ -149,6 +153,11 @@ class Neighbours:
             return None
         go_on(pursuit, None, self.deadline, REFINEMENTS)
         return pursuit if pursuit.end in (End.CONVERGED, End.SETTLED) else None
+
+
+def _unheard(_: Iterate) -> bool:
+    """Nobody watches the steps of a point, and nobody stops there."""
+    return False
 
 
 def _straight_on(now: Start, before: Start, share: float) -> Start:

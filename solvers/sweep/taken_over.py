@@ -2,9 +2,9 @@
 
 Every so-maniest point is looked at closely: all its checks are made.  Between them `ALWAYS` are made, and what passed
 by far at the neighbour is taken over on the same mesh: the figures change smoothly along a branch.  The second order is
-taken over only where the minimiser's matrix says so too: at the end of a minimisation without a correction it has the
-inertia of a minimum (Waechter, Biegler 2006, section 3.1; from memory), which along a branch changes only where the
-matrix becomes singular.  Where limits are held along arcs, whether they are held rightly is looked at each time: the
+taken over only where the point's own matrix has the inertia of a minimum: the minimiser says so at the end of a
+minimisation without a correction (Waechter, Biegler 2006, section 3.1; from memory), and after Newton's steps it is
+counted.  Where limits are held along arcs, whether they are held rightly is looked at each time: the
 structure may change between any two points.
 """
 

@@ -67,6 +67,13 @@ def test_beyond_it_the_action_is_not_least_and_the_point_is_found(stationary, ex
     assert np.pi <= check.place <= np.pi + 1.01 * np.diff(path.breaks).max()
 
 
+@pytest.mark.parametrize("seek", ["minimum", "maximum"])
+@pytest.mark.parametrize("length, least", [(1.0, True), (3.0, True), (3.3, False), (7.0, False)])
+def test_the_program_alone_tells_its_minimum_from_a_saddle(stationary, length, seek, least):
+    """Between points of a sweep that are looked at closely; the conjugate point lies at pi."""
+    assert inertia.minimum_of_program(stationary(action(length, seek=seek))) is least
+
+
 def test_the_focal_point_of_a_free_end_comes_earlier(stationary, examine):
     assert examine(curvature.check, stationary(FREE_END)).status is Status.FAILED
     earlier = {**action(1.5), "endpoints": ["y(0) = 0"]}
