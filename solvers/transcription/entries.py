@@ -79,12 +79,27 @@ class Entries:
         self._values.append(_spread(values, shape, np.float64))
         self._sources.append(_spread(sources, shape, np.int64))
 
+    @property
+    def rows(self) -> Indices:
+        """The row of every entry, in the order in which they were added."""
+        return np.concatenate(self._rows)
+
+    @property
+    def columns(self) -> Indices:
+        """The column of every entry."""
+        return np.concatenate(self._columns)
+
+    @property
+    def values(self) -> Array:
+        """The value of every entry."""
+        return np.concatenate(self._values)
+
     def recipe(self, shape: tuple[int, int]) -> Recipe:
         """How the matrix is made."""
-        keys = np.concatenate(self._columns) * shape[0] + np.concatenate(self._rows)
+        keys = self.columns * shape[0] + self.rows
         order = np.argsort(keys, kind="stable")
         keys = keys[order]
-        values, sources = np.concatenate(self._values)[order], np.concatenate(self._sources)[order]
+        values, sources = self.values[order], np.concatenate(self._sources)[order]
         new = _changes(keys)
         place = np.cumsum(new) - 1
         keys = keys[new]

@@ -21,9 +21,10 @@ Indices = NDArray[np.int64]
 
 @dataclass(frozen=True, slots=True)
 class Spanned:
-    """The intervals of one scheme, their points (G x K) and the states that span them (G x (K+1) x n)."""
+    """The G intervals of one scheme, their points (G x K) and the states that span them (G x (K+1) x n)."""
 
     scheme: Scheme
+    members: Indices
     points: Indices
     support: Indices
 
@@ -34,6 +35,7 @@ def spanned(placed: Placement) -> list[Spanned]:
     return [
         Spanned(
             group.scheme,
+            group.members,
             group.points,
             np.concatenate([where.nodes[group.members][:, None, :], where.inner[group.points]], axis=1),
         )
@@ -51,44 +53,36 @@ def slopes(groups: list[Spanned], z: Array) -> Array:
 
 
 Block = tuple[Indices, Indices, Array]
-"""Rows, columns and values (SI) of constant entries of g."""
+"""Rows, columns and values (SI) of constant entries of g: three arrays that spread to one shape."""
 
 
 def slope_entries(placed: Placement, groups: list[Spanned]) -> Iterator[Block]:
     """The entries of the slopes of the states."""
     n = placed.compiled.point.states
     for group in groups:
-        degree = group.scheme.degree
         row = placed.rows.defects + group.points[:, :, None] * n + np.arange(n)  # G x K x n
-        shape = (len(group.points), degree, degree + 1, n)
-        yield (
-            np.broadcast_to(row[:, :, None, :], shape).ravel(),
-            np.broadcast_to(group.support[:, None, :, :], shape).ravel(),
-            np.broadcast_to(group.scheme.differentiate[None, :, :, None], shape).ravel(),
-        )
+        yield row[:, :, None, :], group.support[:, None, :, :], group.scheme.differentiate[:, :, None]
 
 
-def loose_rows(placed: Placement) -> Iterator[Block]:
+def loose_rows(placed: Placement, groups: list[Spanned]) -> Iterator[Block]:
     """The entries of the other linear rows: end values of Gauss intervals, rims, calm controls, the integrals."""
     where, rows, mesh, compiled = placed.layout, placed.rows, placed.mesh, placed.compiled
     n = compiled.point.states
     yield rows.integrals + np.arange(len(where.integrals)), where.integrals, np.ones(len(where.integrals))
-    rank = 0
-    for k, interval in enumerate(mesh.intervals):
-        if interval.scheme.family is Family.GAUSS and n:
-            row = rows.ends + rank * n + np.arange(n)
-            support = np.vstack([where.nodes[k], where.inner[where.first[k] : where.first[k + 1]]])
-            values = np.repeat(interval.scheme.extrapolate, n)
-            yield np.tile(row, len(support)), support.ravel(), values
-            yield row, where.nodes[k + 1], -np.ones(n)
-            rank += 1
-    for rank, (control, place, _) in enumerate(compiled.rims):
+    rank = np.cumsum(mesh.gauss) - 1
+    for group in groups:
+        if group.scheme.family is Family.GAUSS:
+            row = rows.ends + rank[group.members][:, None] * n + np.arange(n)  # G x n
+            yield row[:, None, :], group.support, group.scheme.extrapolate[:, None]
+            yield row, where.nodes[group.members + 1], np.array(-1.0)
+    for index, (control, place, _) in enumerate(compiled.rims, start=rows.rims):
         owner = int(where.at_place[place]) - (1 if place else 0)
         scheme = mesh.intervals[owner].scheme
         side = np.ones(scheme.degree) if place else (-1.0) ** np.arange(scheme.degree)
         columns = where.controls[where.first[owner] : where.first[owner + 1], control]
-        yield np.full(scheme.degree, rows.rims + rank), columns, side @ scheme.control_modes
-    for rank, (control, owner, mode) in enumerate(calm_entries(compiled, mesh), start=len(compiled.rims)):
+        yield np.array(index), columns, side @ scheme.control_modes
+    first = rows.rims + len(compiled.rims)
+    for index, (control, owner, mode) in enumerate(calm_entries(compiled, mesh), start=first):
         scheme = mesh.intervals[owner].scheme
         columns = where.controls[where.first[owner] : where.first[owner + 1], control]
-        yield np.full(scheme.degree, rows.rims + rank), columns, scheme.control_modes[mode]
+        yield np.array(index), columns, scheme.control_modes[mode]

@@ -186,8 +186,14 @@ class Numbers:
 
     def _loose(self) -> tuple[Indices, Indices, Array]:
         """Columns, rows and values (scaled) of the linear rows that are no defects."""
-        rows, columns, values = (np.concatenate(parts) for parts in zip(*loose_rows(self._placed), strict=True))
-        return columns, rows, values * self._placed.scale[columns] / self._placed.row_scale[rows]
+        entries = Entries()
+        for row, columns, values in loose_rows(self._placed, self._spanned):
+            entries.add(row, columns, self._scaled(row, columns, values))
+        return entries.columns, entries.rows, entries.values
+
+    def _scaled(self, row: Indices, columns: Indices, values: Array) -> Array:
+        """Entries of g in the program's units."""
+        return values * self._placed.scale[columns] / self._placed.row_scale[row]
 
     def _recipes(self) -> tuple[Recipe, Recipe, Recipe]:
         """Of the Jacobian of g, of the gradient of f, of the Hessian's upper triangle."""
@@ -198,7 +204,7 @@ class Numbers:
         columns, loose, values = self._linear
         jacobian.add(loose, columns, values)
         for row, columns, values in slope_entries(placed, self._spanned):
-            jacobian.add(row, columns, values * scale[columns] / row_scale[row])
+            jacobian.add(row, columns, self._scaled(row, columns, values))
         out, by = np.array(point.jacobian_rows, int), np.array(point.jacobian_columns, int)
         each = np.arange(self.count)[:, None] * len(out)
         inside = np.flatnonzero((out < point.outputs - 1) & moving[by])
