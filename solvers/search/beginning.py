@@ -15,6 +15,7 @@ from solvers.search.conflict import VIOLATED, curve_of_least_violation, least_vi
 from solvers.search.effort import Minimiser
 from solvers.search.record import End, Pursuit
 from solvers.starts.guess import first_guess, guesses
+from solvers.transcription.functions import linear_controls
 from solvers.transcription.layout import layout
 from solvers.transcription.mesh import Mesh
 from solvers.transcription.program import Program
@@ -26,6 +27,11 @@ DOUBTFUL_ITERATIONS = 200
 """Iterations of further tries once one start has led to a conflict."""
 FEW_ITERATIONS = 100
 """Iterations within which a solve from a related trajectory must be through: it starts near its end."""
+FALLING: tuple[dict[str, Any], int] = {"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 1e-3}, FEW_ITERATIONS
+ADAPTING: tuple[dict[str, Any], int] = {}, 60
+"""What is tried from a related trajectory, and how long.  An adaptive barrier needs a third fewer iterations, but now
+and then it does not come to an end, and where controls act linearly it does not keep to the middle of what they may do.
+"""
 NIMBLE_ITERATIONS = 250
 """Iterations after which an adaptive barrier rather goes round in circles than nears an end."""
 STEADY: dict[str, Any] = {"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 0.1} | LEAST_SQUARES_MULTIPLIERS
@@ -85,17 +91,18 @@ def begin(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Program, Minimum] | N
 
 
 def begin_from(
-    pursuit: Pursuit, minimise_: Minimiser, start: Trajectory, mesh: Mesh | None
+    pursuit: Pursuit, minimise_: Minimiser, start: Trajectory, mesh: Mesh | None, iterations: int | None = None
 ) -> tuple[Program, Minimum] | None:
-    """The first mesh, from a trajectory of a related form of the problem."""
+    """The first mesh, from a trajectory of a related form of the problem; where it is said within how many iterations,
+    in a single attempt."""
     mesh = mesh or first_mesh(len(pursuit.problem.places) - 1)
     where = layout(pursuit.compiled, mesh)
     z = related(start, pursuit.compiled, mesh, where)
     program = make_program(pursuit.compiled, mesh, where, z)
     z = z / program.scale
-    settings: tuple[dict[str, Any], ...] = ({"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 1e-3}, {})
-    for options in settings:
-        minimum = minimise_(program, Start(z), options | {"ipopt.max_iter": FEW_ITERATIONS})
+    settings = (FALLING, ADAPTING) if linear_controls(pursuit.compiled) else (ADAPTING, FALLING)
+    for options, most in settings[:1] if iterations else settings:
+        minimum = minimise_(program, Start(z), options | {"ipopt.max_iter": iterations or most})
         if minimum.outcome in SOLVED:
             return program, minimum
         pursuit.end = end_of(minimum)

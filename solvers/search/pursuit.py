@@ -18,7 +18,7 @@ from solvers.search.effort import Minimiser
 from solvers.search.record import End, Pursuit
 from solvers.search.settling import estimate_errors, settled
 from solvers.solution import Watch
-from solvers.transcription.functions import compile_problem
+from solvers.transcription.functions import compile_problem, linear_controls
 from solvers.transcription.layout import Layout, layout
 from solvers.transcription.lowering import lower
 from solvers.transcription.mesh import Mesh
@@ -32,6 +32,18 @@ AIM = 0.1
 """The local error that a new mesh is made for, relative to the tolerance."""
 LEAST_BARRIER = 1e-11
 """The least barrier with which a warm start begins."""
+CLOSE = 1e-2
+"""The error of a mesh up to which the next one begins close to its end."""
+NIMBLE: dict[str, Any] = {
+    "ipopt.mu_strategy": "adaptive",
+    "ipopt.mu_min": 1e-14,
+    "ipopt.acceptable_iter": 15,
+    "ipopt.max_iter": 25,
+}
+"""Options for a start close to its end: a barrier that adapts takes a third of the iterations (4 to 8 instead of 10 to
+28 on obstacles and arcs on limits).  It has to end lower than by default, or the value stays above by what the limits
+together still push; and a start close to its end is acceptable from the first, which must not be enough.  What takes
+longer is not determined well: there such a barrier leads astray, and is not tried again."""
 NARROW = 0.1
 """Width of an interval, relative to an even mesh, below which a smaller barrier may help."""
 
@@ -44,12 +56,17 @@ def pursue(
     meshes: int = MESHES,
     start: Trajectory | None = None,
     mesh: Mesh | None = None,
+    iterations: int | None = None,
 ) -> Pursuit:
-    """Solve one form of a problem on at most so many meshes, from a trajectory of a related form where one is given."""
+    """Solve one form of a problem on at most so many meshes.
+
+    From a trajectory of a related form where one is given; then a single attempt is made where it is also said within
+    how many `iterations`.
+    """
     compiled = compile_problem(lower(problem))
     pursuit = Pursuit(problem, compiled)
     minimiser = Minimiser(pursuit, watch, deadline)
-    begun = begin(pursuit, minimiser) if start is None else begin_from(pursuit, minimiser, start, mesh)
+    begun = begin(pursuit, minimiser) if start is None else begin_from(pursuit, minimiser, start, mesh, iterations)
     if begun is None:
         return pursuit
     _add(pursuit, minimiser, *begun)
@@ -126,17 +143,29 @@ def _next(path: Trajectory, mesh: Mesh, minimise_: Minimiser) -> tuple[Program, 
         del tries[1]
     elif pursuit.gently:
         del tries[0]
+    if _close(pursuit):
+        tries.insert(0, (warm, NIMBLE))
     for start, options in tries:
         afresh = start is not warm
         minimum = minimise_.patiently(program, start) if afresh else minimise_(program, start, options)
         if minimum.outcome in SOLVED:
             pursuit.gently = options is gentle
             return program, minimum
+        pursuit.astray = pursuit.astray or options is NIMBLE
         end = end_of(minimum)
         if end in (End.STOPPED, End.TIME):
             break
     pursuit.end = end
     return None
+
+
+def _close(pursuit: Pursuit) -> bool:
+    """Whether a mesh is so good that the next one begins near its end, and determines all controls.
+
+    Where one acts linearly, many curves may do nearly equally well: a large barrier keeps to their middle.
+    """
+    good = (pursuit.steps[-1].error or 0.0) <= CLOSE
+    return good and not pursuit.gently and not pursuit.astray and not linear_controls(pursuit.compiled)
 
 
 def gentle_barrier(mesh: Mesh) -> float:

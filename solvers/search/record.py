@@ -52,6 +52,7 @@ class Pursuit:
     value_met_before: bool = False
     iterations: int = 0
     gently: bool = False  # whether the last warm start had to begin with a small barrier
+    astray: bool = False  # whether a barrier that adapts did not come to an end
 
     @property
     def solved(self) -> bool:

@@ -185,6 +185,18 @@ def test_the_barrier_of_a_warm_start_is_smaller_where_intervals_are_narrow():
     assert gentle_barrier(Mesh((*cut, *rest))) == pytest.approx(WARM["ipopt.mu_init"] * 9 / 8e4)
 
 
+def test_close_to_its_end_a_warm_start_needs_few_iterations():
+    """A string from rim to rim over the arch y = 1 - x^2 touches it at 2 - sqrt(3) from the middle: closed form."""
+    over = shape(independent={"name": "x", "from": -2, "to": 2}, endpoints=["y(-2) = 0", "y(2) = 0"],
+                 constraints=["y >= 1 - x^2"])  # fmt: skip
+    pursuit = pursue(over, None, far())
+    touch = 2 - np.sqrt(3)
+    arch = touch * np.sqrt(1 + 4 * touch**2) + np.arcsinh(2 * touch) / 2
+    assert pursuit.paths[-1].value == pytest.approx(arch + 2 * np.hypot(2 - touch, 1 - touch**2), abs=1e-6)
+    assert max(step.iterations for step in pursuit.steps[2:]) <= 10
+    assert not pursuit.astray
+
+
 def test_a_mesh_that_cannot_be_solved_takes_nothing_back(monkeypatch):
     """What two meshes have shown stays shown, but what only one has found does not become a result by that."""
 
