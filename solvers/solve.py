@@ -35,6 +35,7 @@ from solvers.forms.slack import SLACK, rounded_functions, with_slacks
 from solvers.minimise.ipopt import FLOOR
 from solvers.problem import Continuation, Problem, Seek
 from solvers.search.chatter import chatter
+from solvers.search.early import sharpened_early
 from solvers.search.escape import escapes
 from solvers.search.holding import held_rightly
 from solvers.search.irreducible import name_conflicts
@@ -246,7 +247,10 @@ def _found(problem: Problem, watch: Watch | None, deadline: Deadline, form: Form
 def _in_given_form(problem: Problem, watch: Watch | None, deadline: Deadline) -> Pursuit:
     """Plain meshes first; where controls switch, then the switches as unknowns; else plain meshes to the end."""
     began = time.process_time()
-    pursuit = pursue(problem, watch, deadline, meshes=3)
+    pursuit = pursue(problem, watch, deadline, meshes=1)
+    early = sharpened_early(pursuit, watch, deadline)
+    if early is not None:
+        return _after(pursuit, early)
     if pursuit.solved and (pursuit.steps[-1].error or 0.0) <= NEARLY * problem.options.tolerance:
         pursuit = pursuit if pursuit.end is End.CONVERGED else go_on(pursuit, watch, deadline, 3)
     if pursuit.end is End.CONVERGED and jumps_at_breaks(pursuit.paths[-1]):  # their multipliers are not the only ones

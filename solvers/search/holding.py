@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 
 import numpy as np
 from numpy.typing import NDArray
@@ -19,9 +19,23 @@ WRONG = 0.2
 """How far, relative to the largest on its arc, the slope of the value may point away from the limit that is held."""
 
 
+SURELY = 1e-3
+"""The same where nothing is to remain in doubt."""
+
+
 def held_rightly(path: Trajectory) -> bool:
     """Whether leaving any held limit would make the value worse."""
     return not wrongly_held(path)
+
+
+def surely_held_rightly(path: Trajectory) -> bool:
+    """The same beyond what discretisation blurs; for a state nearly all that pushes has to push towards the limit."""
+    return not any(
+        outward.min(initial=0.0) < -SURELY * np.abs(outward).max(initial=0.0)
+        if control
+        else -outward[outward < 0].sum() > SURELY * np.abs(outward).sum()
+        for _, outward, control in _slopes(path)
+    )
 
 
 def wrongly_held(path: Trajectory) -> list[Held]:
@@ -30,12 +44,23 @@ def wrongly_held(path: Trajectory) -> list[Held]:
     For a control at any point of its arc, but for what discretisation blurs near its ends; for a state, whose
     multiplier may be spread in many ways, in the sum.
     """
+    return [
+        held
+        for held, outward, control in _slopes(path)
+        if (outward.min(initial=0.0) < -WRONG * np.abs(outward).max(initial=0.0) if control else outward.sum() < 0)
+    ]
+
+
+def _slopes(path: Trajectory) -> Iterator[tuple[Held, Array, bool]]:
+    """What is held, how much the value loses along it by leaving its limit, and whether it is a control.
+
+    By the measure of each point for a control, in all for a state.
+    """
     program = path.program
     where, problem = program.layout, program.compiled.lowered.problem
     slopes = -path.bound_multipliers * program.scale / abs(program.value_scale)
     lowered = program.compiled.lowered
     resting = [signal for signal in signals(path) if signal.state]
-    found = []
     for held in problem.held:
         quantity = (held.name, held.order)
         inside = where.stretch == held.stretch
@@ -43,13 +68,9 @@ def wrongly_held(path: Trajectory) -> list[Held]:
             continue  # a state rests on its limit besides: the multipliers are not unique
         if quantity in lowered.controls:
             outward = -held.side * slopes[where.controls[inside, lowered.controls.index(quantity)]]
-            outward = outward / where.measures[inside]
-            wrong = outward.min(initial=0.0) < -WRONG * np.abs(outward).max(initial=0.0)
+            yield held, outward / where.measures[inside], True
         else:
-            wrong = -held.side * slopes[where.inner[inside, lowered.states.index(quantity)]].sum() < 0
-        if wrong:
-            found.append(held)
-    return found
+            yield held, -held.side * slopes[where.inner[inside, lowered.states.index(quantity)]], False
 
 
 def released(path: Trajectory, wrong: Sequence[Held]) -> list[Release]:

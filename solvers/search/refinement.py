@@ -185,8 +185,8 @@ def refine(path: Trajectory, found: Estimate, tolerance: float) -> Mesh:
     """
     mesh = path.program.mesh
     widths = np.diff(path.breaks) / (path.breaks[-1] - path.breaks[0])
-    falls = [max(_fall(shape), 1e-3) for shape in found.shapes]
-    smooth = all(fall >= SMOOTH or error <= tolerance for fall, error in zip(falls, found.errors, strict=True))
+    falls = _falls(found)
+    smooth = smooth_all_along(found, tolerance)
     pieces: list[Interval] = []
     for k, old in enumerate(mesh.intervals):
         if found.errors[k] <= tolerance:
@@ -195,6 +195,15 @@ def refine(path: Trajectory, found: Estimate, tolerance: float) -> Mesh:
             missing = float(np.log10(found.errors[k] / tolerance))
             pieces.extend(_replace(old, missing, falls[k], found.bends[k], float(widths[k]), smooth))
     return Mesh(tuple(pieces))
+
+
+def smooth_all_along(found: Estimate, tolerance: float) -> bool:
+    """Whether coefficients fall fast on all intervals but those that are good enough anyway."""
+    return all(fall >= SMOOTH or error <= tolerance for fall, error in zip(_falls(found), found.errors, strict=True))
+
+
+def _falls(found: Estimate) -> list[float]:
+    return [max(_fall(shape), 1e-3) for shape in found.shapes]
 
 
 def _replace(

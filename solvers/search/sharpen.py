@@ -87,24 +87,24 @@ def with_structure(base: Pursuit, path: Trajectory, watch: Watch | None, deadlin
     for _ in range(ROUNDS):
         found = sorted([*switches(path, linear), *present_switches(path)], key=lambda switch: switch.place)
         changed = one or with_switches(base.problem, found, path, linear, loose)
-        if again and changed is not None and _alike(changed, seen):
+        if again and changed is not None and alike(changed, seen):
             found = [switch for switch in found if not _vanishing(switch, shrinking(path))]
             loose += released(path, shrunk(path))
             changed = with_switches(base.problem, found, path, linear, loose)
         if changed is None:
             break
-        alike = _alike(changed, seen)
-        if alike and (again or not at_the_edge(path)):
+        same = alike(changed, seen)
+        if same and (again or not at_the_edge(path)):
             break
-        again, one = alike, None
-        now = pursue(changed, watch, deadline, meshes=2, start=path, mesh=_mesh(changed))
+        again, one = same, None
+        now = pursue(changed, watch, deadline, meshes=2, start=path, mesh=mesh_between(changed))
         if not now.solved:
             break
         path = now.paths[-1]
         seen = changed
         if at_the_edge(path):
             continue
-        if not _agrees(now, base):
+        if not agrees(now, base):
             break
         wrong = wrongly_held(path)
         if wrong:
@@ -113,14 +113,14 @@ def with_structure(base: Pursuit, path: Trajectory, watch: Watch | None, deadlin
                 loose += released(path, wrong)
             continue
         pursuit = now
-        if now.end is End.CONVERGED or not _slow(now):
+        if now.end is End.CONVERGED or not slow(now):
             break
     if pursuit is None or pursuit.end is End.CONVERGED:
         return pursuit
     return go_on(pursuit, watch, deadline, 4)
 
 
-def _slow(pursuit: Pursuit) -> bool:
+def slow(pursuit: Pursuit) -> bool:
     """Whether the error has hardly fallen on the last mesh, as it does where a switch is still missing."""
     errors = [step.error or 0.0 for step in pursuit.steps]
     return len(errors) > 1 and errors[-1] > SLOW * errors[-2]
@@ -131,7 +131,7 @@ def _vanishing(switch: Switch, stretches: list[tuple[float, float]]) -> bool:
     return any(min(stretch) <= switch.place <= max(stretch) and switch.place != stretch[1] for stretch in stretches)
 
 
-def _alike(one: Problem, other: Problem) -> bool:
+def alike(one: Problem, other: Problem) -> bool:
     """Whether two structures have the same arcs in the same order."""
     return (one.held, one.calm, len(one.places)) == (other.held, other.calm, len(other.places))
 
@@ -149,8 +149,8 @@ def _with_more_switches(base: Pursuit, sharp: Pursuit, watch: Watch | None, dead
         changed = one_more(path)
         if changed is None:
             break
-        pursuit = pursue(changed, watch, deadline, meshes=2, start=path, mesh=_mesh(changed))
-        if not pursuit.solved or at_the_edge(pursuit.paths[-1]) or not _agrees(pursuit, base):
+        pursuit = pursue(changed, watch, deadline, meshes=2, start=path, mesh=mesh_between(changed))
+        if not pursuit.solved or at_the_edge(pursuit.paths[-1]) or not agrees(pursuit, base):
             break
         if pursuit.value_error > error:
             break
@@ -158,7 +158,7 @@ def _with_more_switches(base: Pursuit, sharp: Pursuit, watch: Watch | None, dead
     return last if last.shown or last.value_error <= sharp.value_error else sharp
 
 
-def _mesh(problem: Problem) -> Mesh:
+def mesh_between(problem: Problem) -> Mesh:
     """Few intervals where everything is held, more where a control is free."""
     pieces: list[Interval] = []
     calm = {c.stretch for c in problem.calm}
@@ -172,6 +172,6 @@ def _mesh(problem: Problem) -> Mesh:
     return Mesh(tuple(pieces))
 
 
-def _agrees(found: Pursuit, base: Pursuit) -> bool:
+def agrees(found: Pursuit, base: Pursuit) -> bool:
     """Whether the sharpened value is the one that the plain meshes tend to."""
     return abs(found.paths[-1].value - base.paths[-1].value) <= AGREEMENT * base.value_size

@@ -9,7 +9,7 @@ from solvers.formula.evaluate import REAL, evaluate
 from solvers.formula.nodes import Number
 from solvers.minimise.ipopt import Minimum, Outcome
 from solvers.problem import Place
-from solvers.search.holding import released, wrongly_held
+from solvers.search.holding import released, surely_held_rightly, wrongly_held
 from solvers.search.signals import MOST_SWITCHES, SWITCH, Switch, signals, switches
 from solvers.search.structure import at_the_edge, determined_by, present_switches, shrinking, softened, with_switches
 from solvers.solution import Verdict
@@ -209,6 +209,20 @@ def test_a_limit_that_it_would_be_better_to_leave_is_let_go_up_to_where_it_is_he
     path = wrongly()
     assert [(h.stretch, h.name) for h in wrongly_held(path)] == [(1, "u")]
     assert released(path, wrongly_held(path)) == [(("u", 0), 0.0, 1.0)]
+
+
+def test_what_a_coarse_mesh_shows_is_believed_only_where_nothing_pushes_away_from_its_limit():
+    path = wrongly()
+    inside = path.program.layout.controls[path.program.layout.stretch == 1, 0]
+    right = -path.bound_multipliers[inside]
+    assert not surely_held_rightly(path)
+    for share, surely in ((0.0, True), (0.1, False)):
+        multipliers = path.bound_multipliers.copy()
+        multipliers[inside] = right
+        multipliers[inside[3]] = -share * right[3]
+        spoiled = replace(path, bound_multipliers=multipliers)
+        assert wrongly_held(spoiled) == []
+        assert surely_held_rightly(spoiled) is surely
 
 
 def test_a_switch_at_the_edge_of_its_room_shrinks_what_lies_beyond():

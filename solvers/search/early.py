@@ -1,0 +1,108 @@
+"""Switches that a coarse mesh already shows clearly: the problem is solved with them without finer plain meshes."""
+
+from __future__ import annotations
+
+from itertools import pairwise
+
+import numpy as np
+
+from solvers.deadline import Deadline
+from solvers.problem import Problem
+from solvers.search.holding import surely_held_rightly
+from solvers.search.pursuit import go_on, pursue
+from solvers.search.record import End, Pursuit
+from solvers.search.refinement import smooth_all_along
+from solvers.search.sharpen import agrees, alike, mesh_between, slow
+from solvers.search.signals import Switch, switches
+from solvers.search.structure import at_the_edge, with_switches
+from solvers.solution import Watch
+from solvers.transcription.functions import linear_controls
+from solvers.transcription.lowering import Quantity
+from solvers.transcription.trajectory import Trajectory
+
+PLAIN = 3
+"""Plain meshes after which more effort is due to find the switches."""
+LEAST_POINTS = 4
+"""So many points of the mesh must lie on every arc, or it may be none: as many as an interval of the first mesh has."""
+HASTY = 30
+"""Iterations within which a right structure is solved: most take less than 20."""
+FURTHER = 2
+"""Meshes that a right structure is given where the second one does not suffice."""
+SHARE = 0.3
+"""Share of the remaining time that one structure may take."""
+
+
+def sharpened_early(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit | None:
+    """Refine a plain pursuit up to a few meshes; on the way try the switches that these show, if they do clearly.
+
+    What is found has to converge, to agree with the plain value, and to be held rightly beyond doubt; else this is
+    None, and nothing is lost but the time.
+    """
+    linear = [base.compiled.lowered.controls[index] for index in linear_controls(base.compiled)]
+    tried: list[Problem] = []
+    while base.end is End.SETTLED:
+        last = len(base.paths) >= PLAIN
+        changed = None if last and not linear else _clear_structure(base, linear)  # else it is looked at anyway
+        if changed is not None and not any(alike(changed, other) for other in tried):
+            tried.append(changed)
+            sharp = _surely(changed, base, watch, deadline.within(SHARE * deadline.left))
+            if sharp is not None:
+                return sharp
+        if last:
+            break
+        go_on(base, watch, deadline, 1)
+    return None
+
+
+def _clear_structure(base: Pursuit, linear: list[Quantity]) -> Problem | None:
+    """The problem with the switches that its last mesh shows, where that is not smooth and shows all arcs."""
+    path, tolerance = base.paths[-1], base.problem.options.tolerance
+    if smooth_all_along(base.estimates[-1], tolerance):
+        return None
+    found = switches(path, linear)
+    for seen in (found, _without_unseen(path, found)):
+        changed = with_switches(base.problem, seen, path, linear) if seen else None
+        if changed is not None and _clear(path, changed):
+            return changed
+    return None
+
+
+def _without_unseen(path: Trajectory, found: list[Switch]) -> list[Switch]:
+    """Two switches with hardly a point between them as one: what the mesh blurs between two arcs is no third one."""
+    kept: list[Switch] = []
+    for switch in found:
+        last = kept[-1] if kept else None
+        apart = last is None or {last.touching, last.bent, switch.touching, switch.bent} != {None}
+        if last is None or apart or _points_between(path, last.place, switch.place) >= LEAST_POINTS:
+            kept.append(switch)
+        else:
+            kept[-1] = Switch((last.place + switch.place) / 2, last.low, switch.high)
+    return kept
+
+
+def _clear(path: Trajectory, changed: Problem) -> bool:
+    """Whether enough points lie on every arc."""
+    switched = [parameter.guess for parameter in changed.parameters[len(path.parameters) :]]
+    places = sorted([*path.places, *(place for place in switched if place is not None)])
+    return all(_points_between(path, low, high) >= LEAST_POINTS for low, high in pairwise(places))
+
+
+def _points_between(path: Trajectory, low: float, high: float) -> int:
+    return int(np.sum((path.points > low) & (path.points < high)))
+
+
+def _surely(changed: Problem, base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit | None:
+    """The problem with switches solved, where what comes of it is beyond doubt."""
+    path = base.paths[-1]
+    sharp = pursue(changed, watch, deadline, meshes=1, start=path, mesh=mesh_between(changed), iterations=HASTY)
+    if not sharp.solved or not _right(sharp, base):
+        return None
+    go_on(sharp, watch, deadline, 1)
+    if sharp.end is not End.CONVERGED and not slow(sharp):
+        go_on(sharp, watch, deadline, FURTHER)
+    return sharp if sharp.end is End.CONVERGED and _right(sharp, base) else None
+
+
+def _right(sharp: Pursuit, base: Pursuit) -> bool:
+    path = sharp.paths[-1]
+    return not at_the_edge(path) and agrees(sharp, base) and surely_held_rightly(path)

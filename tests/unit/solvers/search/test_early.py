@@ -1,0 +1,66 @@
+"""Switches that coarse meshes show, against closed forms; what these do not show clearly is left to more effort."""
+
+import numpy as np
+import pytest
+
+from solvers.deadline import in_seconds
+from solvers.search.early import sharpened_early
+from solvers.search.pursuit import pursue
+from solvers.search.record import End
+from solvers.search.structure import present_switches
+from tests.unit.solvers.problems import LEAST_TIME, regulator, shape, stated
+from tests.unit.solvers.search.test_sharpen import CATALYST, SPEED_LIMIT
+
+
+def sharpened(problem):
+    """What comes of the first mesh, and the plain pursuit from which it came."""
+    deadline = in_seconds(40)
+    base = pursue(problem, None, deadline, meshes=1)
+    return sharpened_early(base, None, deadline), base
+
+
+@pytest.mark.parametrize(
+    "members, value, places, precision",
+    [
+        # Pontryagin et al. (1962), The Mathematical Theory of Optimal Processes, section 5 (from memory).
+        (LEAST_TIME, 1 + np.sqrt(6), [1 + np.sqrt(3 / 2)], 1e-9),
+        # Gunn, Thomas (1965); Dolan, More, Munson (2004), ANL/MCS-TM-273, problem 14; more digits as in the catalogue.
+        (CATALYST, -0.0480556858608775, [0.1362990345945556, 0.7252301075916548], 1e-8),
+        # Closed form: ramp, cruise, ramp.  The first mesh blurs the end of the cruise.
+        (SPEED_LIMIT, 2.5, [0.5, 2.0], 1e-9),
+    ],
+    ids=("bang-bang", "singular arc", "limit on a state"),
+)
+def test_one_plain_mesh_is_enough_where_it_shows_the_switches(members, value, places, precision):
+    found, base = sharpened(stated(**members))
+    assert len(base.paths) == 1
+    assert found.end is End.CONVERGED
+    assert found.paths[-1].value == pytest.approx(value, rel=1e-9, abs=1e-10)
+    assert [switch.place for switch in present_switches(found.paths[-1])] == pytest.approx(places, abs=precision)
+    assert abs(found.paths[-1].value - value) <= found.value_error
+
+
+@pytest.mark.parametrize("problem", [regulator(), shape(endpoints=["y(0) = 0", "y(3) = 1"])], ids=("control", "shape"))
+def test_without_switches_plain_meshes_go_on(problem):
+    found, base = sharpened(problem)
+    assert found is None
+    assert base.end is End.CONVERGED
+
+
+def test_a_structure_that_lacks_an_arc_is_refused():
+    """The first mesh shows no full thrust before the singular arc: without it the error hardly falls.
+
+    Dolan, More, Munson (2004), ANL/MCS-TM-273, problem 10; more digits by integrating the arcs, as in the catalogue.
+    """
+    rocket = stated(
+        independent={"name": "t", "from": 0, "to": "T"},
+        parameters={"T": {"within": [0.01, 1]}},
+        unknowns={"h": {}, "v": {}, "m": {"within": [0.6, 1]}, "F": {"within": [0, 3.5]}},
+        dynamics=["h' = v", "v' = (F - 310*v^2*exp(-500*(h - 1)))/m - 1/h^2", "m' = -2*F"],
+        functional={"seek": "maximum", "endpoint": "h(T)"},
+        endpoints=["h(0) = 1", "v(0) = 0", "m(0) = 1", "m(T) = 0.6"],
+    )
+    found, base = sharpened(rocket)
+    assert len(base.paths) > 1
+    assert [(h.stretch, h.side) for h in found.problem.held] == [(0, 1), (2, -1)]
+    assert found.paths[-1].value == pytest.approx(1.01283691831751, abs=1e-11)
