@@ -18,8 +18,8 @@ from numpy.typing import NDArray
 from scipy.linalg import eigh, pinv, qr
 
 from solvers.checks import inertia
-from solvers.checks.inertia import Second
 from solvers.checks.sampling import Sampler
+from solvers.checks.second_order import Second, hessian_of_program, second_order
 from solvers.transcription.trajectory import Trajectory
 from solvers.undetermined import Undetermined
 
@@ -53,7 +53,7 @@ def flat_directions(
     if path.program.layout.size > LARGEST:
         return ()
     sampler = Sampler(path)
-    second = inertia.second_order(sampler)
+    second = second_order(sampler)
     if not second.hessian.finite:
         return ()
     directions = _directions(sampler, second)
@@ -82,7 +82,7 @@ def _directions(sampler: Sampler, second: Second) -> Array:
 
     norm = reduced(_norm(sampler, second)[np.ix_(columns, columns)], kernel)
     norm += 1e-12 * np.trace(norm) / len(norm) * np.eye(len(norm))
-    for hessian in (second.hessian, inertia.hessian_of_program(sampler.path)):
+    for hessian in (second.hessian, hessian_of_program(sampler.path)):
         bend = reduced(hessian.dense()[np.ix_(columns, columns)], kernel)
         values, vectors = eigh((bend + bend.T) / 2, norm)
         kernel = kernel @ vectors[:, np.abs(values) <= FLAT]

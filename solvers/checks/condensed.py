@@ -27,7 +27,7 @@ NOTHING = 1e-14
 def count_negative(form: Array, rows: Array, owner: Indices, penalty: float, noise: float) -> int | None:
     """Negative directions of a form (D x D) where rows (R x D) vanish; `owner` (D) is the interval of each variable.
 
-    None where the inside of an interval has some of its own, or where its factors are off by as much as `noise`.
+    None where the inside of an interval has some of its own, or where rounding errors as large as `noise` may decide.
     """
     rows = rows * (owner != FIXED)
     length = np.sqrt(np.einsum("ij,ij->i", rows, rows))
@@ -53,6 +53,17 @@ def count_negative(form: Array, rows: Array, owner: Indices, penalty: float, noi
     corner[first, first] = form[np.ix_(shared, shared)] + alone.T @ alone / penalty
     corner[first, beside], corner[beside, first] = across[:, shared].T, across[:, shared]
     corner[beside, beside] = -penalty * np.eye(len(crossing))
+    rest = _left_over(block, side, corner, noise)
+    if rest is None:
+        return None
+    pivots = np.linalg.eigvalsh(rest)
+    if np.abs(pivots).min(initial=np.inf) <= noise:
+        return None
+    return int((pivots < 0).sum()) - len(crossing)
+
+
+def _left_over(block: Array, side: Array, corner: Array, noise: float) -> Array | None:
+    """The corner of [[block, side], [side', corner]] without what every block has to do with it (N of them)."""
     try:
         factor = np.linalg.cholesky(block)
     except np.linalg.LinAlgError:
@@ -62,8 +73,8 @@ def count_negative(form: Array, rows: Array, owner: Indices, penalty: float, noi
                for made, meant in ((factor @ np.swapaxes(factor, 1, 2), block), (factor @ moved, side)))  # fmt: skip
     if not lost < noise:
         return None
-    flat = moved.reshape(inner.size, len(corner))
-    return int((np.linalg.eigvalsh(corner - flat.T @ flat) < 0).sum()) - len(crossing)
+    flat = moved.reshape(moved.shape[0] * moved.shape[1], len(corner))
+    return np.asarray(corner - flat.T @ flat)
 
 
 def _by_owner(owner: Indices, count: int) -> tuple[Indices, Flags]:

@@ -21,18 +21,15 @@ section 16.2 (from memory).
 from __future__ import annotations
 
 from dataclasses import replace
-from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
 
 from solvers.checks import legendre
 from solvers.checks.sampling import Sampler
+from solvers.checks.second_order import Second, hessian_of_program, second_order
 from solvers.deadline import FOREVER, Deadline
 from solvers.solution import Check, Status
-
-if TYPE_CHECKING:
-    from solvers.checks.inertia import Second
 
 Flags = NDArray[np.bool_]
 
@@ -65,7 +62,7 @@ def _decided(sampler: Sampler, deadline: Deadline, margin: float) -> Check:
     program = sampler.path.program
     if program.layout.size > LARGEST:
         return Check(NAME, Status.NOT_APPLICABLE, f"The mesh has more than {LARGEST} unknowns; this was not tried.")
-    second = inertia.second_order(sampler)
+    second = second_order(sampler)
     if not second.hessian.finite:
         return Check(NAME, Status.NOT_APPLICABLE, "The second variation is undefined somewhere along the curve.")
     strict = ~(second.fixed | second.pushed)
@@ -81,7 +78,7 @@ def _decided(sampler: Sampler, deadline: Deadline, margin: float) -> Check:
     if negative is None:
         return Check(NAME, Status.NOT_APPLICABLE, "The second variation could not be decided: its matrix is singular.")
     if negative.negative > 0 and negative.directions is not None:
-        again = replace(second, hessian=inertia.hessian_of_program(sampler.path))
+        again = replace(second, hessian=hessian_of_program(sampler.path))
         share = min(max(inertia.proved(form, free, rows, direction) for form in (second, again))
                     for direction in negative.directions.T)  # fmt: skip
         if share < -margin:

@@ -74,3 +74,10 @@ def test_factors_that_are_off_prove_nothing():
                          ids=("ends only", "one interval", "nothing"))  # fmt: skip
 def test_any_of_the_kinds_may_be_missing(owner):
     assert count_negative(np.eye(3), np.ones((1, 3)), owner, PENALTY, NOISE) == 0
+
+
+def test_a_pivot_that_rounding_errors_may_have_made_is_not_counted():
+    form = curved(4)
+    last = np.linalg.inv(form)[-1, -1]
+    form[-1, -1] -= 1 / last  # exactly singular
+    assert count_negative(form, np.zeros((0, len(OWNER))), OWNER, PENALTY, NOISE) is None

@@ -7,6 +7,7 @@ import pytest
 
 from solvers.checks import curvature, inertia
 from solvers.checks.sampling import Sampler
+from solvers.checks.second_order import smooth_junctions
 from solvers.checks.variation import second_variation
 from solvers.deadline import in_seconds
 from solvers.search.pursuit import pursue
@@ -155,5 +156,5 @@ SWITCHING = {
 def test_only_places_where_no_control_jumps_are_left_out(document, smooth, examine):
     deadline = in_seconds(60)
     path = sharpen(pursue(problem_of(document), None, deadline, meshes=3), None, deadline).paths[-1]
-    assert len(inertia.smooth_junctions(Sampler(path))) == smooth
+    assert len(smooth_junctions(Sampler(path))) == smooth
     assert examine(curvature.check, path).status is Status.PASSED
