@@ -46,10 +46,8 @@ def make_program(compiled: Compiled, mesh: Mesh, where: Layout, z: Array, before
 
 
 def end_of(minimum: Minimum) -> End:
-    return {
-        Outcome.INFEASIBLE: End.INFEASIBLE,
-        Outcome.UNBOUNDED: End.UNBOUNDED,
-        Outcome.UNDEFINED: End.UNDEFINED,
-        Outcome.TIME: End.TIME,
-        Outcome.STOPPED: End.STOPPED,
-    }.get(minimum.outcome, End.FAILED)
+    """How a pursuit ends with a minimisation that did not succeed.
+
+    That there is no curve, or no optimum, no minimiser can know: it only saw none nearby.
+    """
+    return {Outcome.TIME: End.TIME, Outcome.STOPPED: End.STOPPED}.get(minimum.outcome, End.FAILED)

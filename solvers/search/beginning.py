@@ -14,6 +14,7 @@ from solvers.search.attempt import FIRST_INTERVALS, SOLVED, end_of, first_mesh, 
 from solvers.search.conflict import VIOLATED, curve_of_least_violation, least_violation_of
 from solvers.search.effort import Minimiser
 from solvers.search.record import End, Pursuit
+from solvers.search.unbounded import in_growing_boxes
 from solvers.starts.guess import first_guess, guesses
 from solvers.transcription.functions import linear_controls
 from solvers.transcription.layout import layout
@@ -21,6 +22,8 @@ from solvers.transcription.mesh import Mesh
 from solvers.transcription.program import Program
 from solvers.transcription.trajectory import Trajectory, related
 
+LOST = (Outcome.FAILED, Outcome.ITERATIONS, Outcome.INFEASIBLE)
+"""Ends of the minimiser that a wrong size may bring about."""
 OUTGROWN = 30.0
 """How much larger than its first size a quantity may end before its size counts as wrong."""
 DOUBTFUL_ITERATIONS = 200
@@ -48,41 +51,45 @@ def begin(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Program, Minimum] | N
     """The first mesh that is solved, from the first guess and settings that lead somewhere."""
     compiled = pursuit.compiled
     stretches = len(pursuit.problem.places) - 1
-    ends: list[End] = []
-    conflict = False
+    outcomes: list[Outcome] = []
+    astray = conflict = False
     for attempt, (most, times, options) in enumerate(ATTEMPTS):
         mesh = first_mesh(stretches, times * FIRST_INTERVALS)
         where = layout(compiled, mesh)
         for guess in islice(guesses(compiled, mesh, where), most):
             program = make_program(compiled, mesh, where, guess.z)
             pursuit.first = pursuit.first or program
-            doubtful = {"ipopt.max_iter": DOUBTFUL_ITERATIONS} if End.INFEASIBLE in ends else {}
+            doubtful = {"ipopt.max_iter": DOUBTFUL_ITERATIONS} if Outcome.INFEASIBLE in outcomes else {}
             minimum = minimise_.patiently(program, Start(guess.z / program.scale), options | doubtful)
-            if minimum.outcome is Outcome.FAILED and _outgrown(minimum):
+            if minimum.outcome in LOST and _outgrown(minimum):
                 z = minimum.z * program.scale
                 program = make_program(compiled, mesh, where, z)
                 minimum = minimise_(program, Start(z / program.scale), options | doubtful)
             if minimum.outcome in SOLVED:
                 return program, minimum
-            ends.append(end_of(minimum))
-            if ends[-1] in (End.STOPPED, End.TIME):
-                pursuit.end = ends[-1]
+            outcomes.append(minimum.outcome)
+            pursuit.end = end_of(minimum)
+            if pursuit.end in (End.STOPPED, End.TIME):
                 return None
-        if attempt == 0 and End.INFEASIBLE in ends:  # to find out is quicker than to fail with other settings
+            astray = astray or _runs_away(minimum)
+        if attempt == 0 and astray:  # to find out is quicker than to fail with other settings
+            mesh = first_mesh(stretches)
+            where = layout(compiled, mesh)
+            begun = in_growing_boxes(pursuit, mesh, where, first_guess(compiled, mesh, where).z, minimise_)
+            if begun is not None or pursuit.end is not End.FAILED:
+                return begun
+        if attempt == 0 and Outcome.INFEASIBLE in outcomes:  # so it is here
             begun = _after_least_violation(pursuit, minimise_)
             conflict = pursuit.end is End.INFEASIBLE
             if begun is not None or pursuit.end in (End.STOPPED, End.TIME):
                 return begun
             if conflict and convex_curves(pursuit.problem):
                 return None
-    if set(ends) == {End.UNDEFINED}:
+    if set(outcomes) == {Outcome.UNDEFINED}:
         mesh = first_mesh(stretches)
         where = layout(compiled, mesh)
         z = first_guess(compiled, mesh, where).z
         pursuit.end, pursuit.findings = End.UNDEFINED, undefined_places(compiled, where, z)
-        return None
-    if End.UNBOUNDED in ends:
-        pursuit.end = End.UNBOUNDED
         return None
     if conflict:
         pursuit.end = End.INFEASIBLE
@@ -124,8 +131,10 @@ def _after_least_violation(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Prog
     minimum = minimise_(program, Start(least.z), STEADY)
     if minimum.outcome in SOLVED:
         return program, minimum
-    pursuit.end = End.UNBOUNDED if _runs_away(program, minimum) else end_of(minimum)
-    return None
+    pursuit.end = end_of(minimum)
+    if pursuit.end in (End.STOPPED, End.TIME) or not _runs_away(minimum):
+        return None
+    return in_growing_boxes(pursuit, program.mesh, program.layout, least.z * program.scale, minimise_)
 
 
 def _outgrown(minimum: Minimum) -> bool:
@@ -134,6 +143,7 @@ def _outgrown(minimum: Minimum) -> bool:
     return bool(OUTGROWN < reached < np.inf)
 
 
-def _runs_away(program: Program, minimum: Minimum) -> bool:
+def _runs_away(minimum: Minimum) -> bool:
     """Whether the value has grown beyond all sizes of the problem."""
-    return not np.isfinite(minimum.value) or minimum.value < -1e6
+    diverged = minimum.outcome is Outcome.UNBOUNDED
+    return diverged or not np.isfinite(minimum.value) or minimum.value < -1e6

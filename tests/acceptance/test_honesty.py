@@ -43,7 +43,22 @@ TWO = {"unknowns": {"y": {}, "z": {}}, "endpoints": ["y(0) = 0", "y(1) = 1", "z(
     "independent": {"name": "x", "from": 0, "to": 1}
 }
 
+
+def loaded_power(power, load):
+    """min of the integral of |y'|^p - k y between zeros at 0 and 1, and its least value.
+
+    Euler's equation p |y'|^(p-1) sign(y') = k (1/2 - x) gives y'; the value is -(p - 1) times the integral of
+    (k |x - 1/2|/p)^(p/(p-1)): -1/216 for p = 3/2, k = 1.
+    """
+    conjugate = power / (power - 1)
+    value = -(power - 1) * (load / (2 * power)) ** conjugate / (conjugate + 1)
+    return between(1) | {"integrand": f"abs(y')^{power} - {load}*y"}, value, GLOBAL
+
+
 CASES = {
+    "a power between one and two": loaded_power(1.5, 1),
+    "under a larger load": loaded_power(1.5, 4),
+    "a power near one": loaded_power(1.3, 1),
     "just before the conjugate point": (swings(1 - 1e-4), 0.0, LEAST),
     "just behind it": (swings(1 + 1e-4), None, NONE),
     "too near to tell": (swings(1 + 1e-9), None, NONE | OPEN),
