@@ -2,8 +2,8 @@
 
 A free time that makes a motion the cheaper the longer it lasts, a value exp(-y) that falls as y grows: the minimiser
 stops somewhere far out, where what is left to gain is less than it can see, and the curve there is the best of none.
-So where something has grown far beyond its first size and no bound holds it, the same mesh is solved once more with
-that quantity ten times as large at the least.  At a minimum the value must suffer.
+So where something has grown far beyond its first size, no bound holds it and the second variation hardly does, the same
+mesh is solved once more with that quantity ten times as large at the least.  At a minimum the value must suffer.
 """
 
 from __future__ import annotations
@@ -16,9 +16,11 @@ from numpy.typing import NDArray
 
 from solvers.deadline import Deadline
 from solvers.minimise.ipopt import FLOOR, Outcome, Start, minimise
+from solvers.minimise.optimality import Optimality
 from solvers.search.record import Pursuit
 from solvers.solution import Finding
 from solvers.transcription.lowering import primed
+from solvers.transcription.trajectory import Trajectory, as_start
 
 Array = NDArray[np.float64]
 
@@ -26,6 +28,13 @@ FAR = 100.0
 """How much larger than its first size a quantity has to be to be looked at."""
 FARTHER = 10.0
 ITERATIONS = 100
+FIRM = 1e-3
+"""Loss of the value, relative to its size, that the second variation foretells for a quantity that has its place: far
+more than what is left to gain where one runs away."""
+ON_LIMIT = 1e-7
+"""How near to a limit, scaled, counts as resting on it."""
+NOTHING = 1e-12
+"""Change of a quantity, by a pull of one, that is rounding: the conditions determine it."""
 
 
 def escapes(pursuit: Pursuit, deadline: Deadline) -> tuple[Finding, ...]:
@@ -33,10 +42,10 @@ def escapes(pursuit: Pursuit, deadline: Deadline) -> tuple[Finding, ...]:
     path = pursuit.paths[-1]
     program = path.program
     z = path.z / program.scale
-    floor = FLOOR * max(abs(program.value_scale), abs(pursuit.first.value_scale) if pursuit.first else 0.0)
+    size = max(abs(program.value_scale), abs(pursuit.first.value_scale) if pursuit.first else 0.0)
     for label, index, scaled in _grown(pursuit):
         side = np.sign(z[index])
-        if np.isfinite(program.upper[index] if side > 0 else program.lower[index]):
+        if np.isfinite(program.upper[index] if side > 0 else program.lower[index]) or _firm(path, index, size):
             continue
         start, bound = z.copy(), FARTHER * z[index]
         start[scaled] *= FARTHER
@@ -46,9 +55,37 @@ def escapes(pursuit: Pursuit, deadline: Deadline) -> tuple[Finding, ...]:
         found = minimise(moved, Start(np.clip(start, lower, upper)), deadline=deadline,
                          options={"ipopt.max_iter": ITERATIONS})  # fmt: skip
         solved = found.outcome in (Outcome.SOLVED, Outcome.ACCEPTABLE)
-        if solved and found.value * abs(program.value_scale) <= abs(program.value_scale) * _value(pursuit) + floor:
+        if (
+            solved
+            and found.value * abs(program.value_scale) <= abs(program.value_scale) * _value(pursuit) + FLOOR * size
+        ):
             return (Finding(label, note="grows without end"),)
     return ()
+
+
+def _firm(path: Trajectory, index: int, size: float) -> bool:
+    """Whether the second variation alone keeps a variable from growing as far as is looked; `size` is the value's.
+
+    A pull at it moves it by w: bringing it elsewhere costs half the square of the way over w.
+    """
+    from scipy.sparse.linalg import splu  # here, so that SciPy is loaded only where it is needed
+
+    program, numbers, start = path.program, path.program.numbers, as_start(path)
+    assert start.multipliers is not None
+    z, rows = start.z, numbers.constraints(start.z)
+    free = np.flatnonzero((z - program.lower > ON_LIMIT) & (program.upper - z > ON_LIMIT))
+    kept = np.flatnonzero((rows - program.row_lower <= ON_LIMIT) | (program.row_upper - rows <= ON_LIMIT))
+    system = Optimality(program, free, kept)
+    matrix = system.matrix(numbers.hessian(z, 1.0, start.multipliers), numbers.jacobian(z))
+    pull = (np.arange(system.size) == np.searchsorted(free, index)).astype(float)
+    try:
+        moved = float(splu(matrix).solve(pull) @ pull)
+    except RuntimeError:  # singular: something is not determined
+        return False
+    way = (FARTHER - 1) * z[index]
+    return abs(moved) < NOTHING * max(1.0, way**2) or (
+        moved > 0 and way**2 / (2 * moved) * abs(program.value_scale) > FIRM * size
+    )
 
 
 def _value(pursuit: Pursuit) -> float:

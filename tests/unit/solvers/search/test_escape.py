@@ -44,3 +44,11 @@ def test_what_is_held_by_a_bound_stays():
     pursuit = pursue(stated(**far, functional={"integrand": "x'^2"}), None, in_seconds(30))
     assert pursuit.solved
     assert escapes(pursuit, in_seconds(30)) == ()
+
+
+def test_what_the_second_variation_holds_is_not_looked_for_farther_out(monkeypatch):
+    """A time of 1000 where one of 1 was guessed: the curve of the value in T is all that is asked for."""
+    problem = stated(**FREE_TIME, functional={"integrand": "x'^2 + 1e-6"})
+    pursuit = pursue(problem, None, in_seconds(60))
+    monkeypatch.setattr("solvers.search.escape.minimise", None)
+    assert escapes(pursuit, in_seconds(60)) == ()
