@@ -31,6 +31,7 @@ from solvers.solution import (
     Price,
     Slope,
     Solution,
+    Stretch,
     SweepPoint,
 )
 from solvers.undetermined import Undetermined
@@ -75,6 +76,7 @@ def result_document(
             "costates": _costates(solution, problem, units),
             "prices": [_price(price, problem, units) for price in solution.prices],
         },
+        "stretches": [_stretch(stretch, problem) for stretch in solution.stretches],
         "observations": _fit(solution, problem, units),
         "extremals": [_extremal(extremal, problem, units) for extremal in solution.extremals],
         "slopes": [_slope(slope, problem) for slope in solution.slopes],
@@ -195,6 +197,16 @@ def _extremal(extremal: Extremal, problem: Problem, units: _Units) -> dict[str, 
         "starts": list(extremal.starts),
         "checks": [_check(check, problem) for check in found.checks],
         "curve": _curve(found, problem, units),
+    }
+
+
+def _stretch(stretch: Stretch, problem: Problem) -> dict[str, Any]:
+    return {
+        "of": stretch.of,
+        "arc": stretch.arc,
+        "from": _in(stretch.start, problem.independent_unit),
+        "to": _in(stretch.end, problem.independent_unit),
+        "course": stretch.course.value,
     }
 
 

@@ -104,6 +104,18 @@ class PriceOfCondition(Part):
     unit: str
 
 
+class StretchFound(Part):
+    """What a control does from switch to switch, or where a state or a constraint lies on a limit."""
+
+    of: str = Field(description="an unknown with its primes, or the constraint")
+    arc: str = Field(description="the arc; empty where one set of laws holds from end to end")
+    start: float | None = Field(alias="from", description="in the unit of the independent variable")
+    end: float | None = Field(alias="to")
+    course: Literal[
+        "at its lower limit", "at its upper limit", "singular", "inside its limits", "switching ever faster"
+    ]
+
+
 class SlopeOfConstant(Part):
     """Change of the optimal value per unit by which a constant is raised."""
 
@@ -420,6 +432,9 @@ class ResultDocument(Part):
     checks: list[CheckResult]
     curve: CurveDocument | None
     multipliers: Multipliers
+    stretches: list[StretchFound] = Field(
+        default=[], description="where switches were found and made unknowns: what lies between them"
+    )
     observations: FitDocument | None = Field(default=None, description="only where something was observed")
     extremals: list[ExtremalFound] = Field(
         default=[], description="what several starts led to, the best (the result itself) first; empty for one start"

@@ -99,6 +99,7 @@ def _lines(result: Mapping[str, Any]) -> Iterator[str]:
         yield "Checks"
         for check in result["checks"]:
             yield from _check(check, result)
+    yield from _stretches(result)
     if len(result.get("extremals") or ()) > 1:
         yield ""
         yield "Curves found from other starts"
@@ -167,6 +168,19 @@ def _sweep(result: Mapping[str, Any]) -> Iterator[str]:
         )
         value = display.joined(display.with_error(point["value"], point["value_error"]), result["value_unit"])
         yield f"  {at:<28}{value:<32}{point['verdict'] or 'no result'}"
+
+
+def _stretches(result: Mapping[str, Any]) -> Iterator[str]:
+    """What lies between the switches."""
+    if not result["stretches"]:
+        return
+    independent = result["curve"]["independent"]
+    yield ""
+    yield "From switch to switch"
+    for one in result["stretches"]:
+        of = f"{one['of']} on {one['arc']}" if one["arc"] else one["of"]
+        ends = f"{display.number(one['from'])} to {display.quantity(one['to'], independent['unit'])}"
+        yield f"  {of:<16}{independent['name']} = {ends:<28}{one['course']}"
 
 
 def _constant(slope: Mapping[str, Any]) -> str:

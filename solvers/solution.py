@@ -162,6 +162,28 @@ class SwitchPlace:
     of: frozenset[str]
 
 
+class Course(Enum):
+    """What a control, a state or a constraint does along a stretch."""
+
+    LOWER = "at its lower limit"
+    UPPER = "at its upper limit"
+    SINGULAR = "singular"
+    INSIDE = "inside its limits"
+    CHATTERING = "switching ever faster"
+
+
+@dataclass(frozen=True, slots=True)
+class Stretch:
+    """What is said of `of`, a control or what lies on a limit: an unknown with its primes, or a constraint's label."""
+
+    start: float
+    end: float
+    of: str
+    course: Course
+    control: bool = False
+    arc: str = ""  # of a problem of arcs
+
+
 @dataclass(frozen=True, slots=True)
 class Fitted:
     """One list of observations and what was fitted to it; all arrays have one entry for each point.
@@ -260,6 +282,7 @@ class Solution:
     costates: Curve | None = None
     arcs: tuple[ArcCurve, ...] = ()
     switches: tuple[SwitchPlace, ...] = ()  # those that were made unknowns of the problem
+    stretches: tuple[Stretch, ...] = ()  # what lies between them
     prices: tuple[Price, ...] = ()
     slopes: tuple[Slope, ...] = ()
     changes: tuple[Change, ...] = ()  # of the curve, with the constants that have a tolerance

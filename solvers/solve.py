@@ -16,6 +16,7 @@ from solvers import checks
 from solvers.answers.fit import fit
 from solvers.answers.prices import prices
 from solvers.answers.sensitivity import Shift, limit_shifts, slopes
+from solvers.answers.stretches import sentences, stretches
 from solvers.checks import curvature, lower_bound, refinement
 from solvers.checks.redundancy import unambiguous
 from solvers.curve import Curve
@@ -53,6 +54,7 @@ from solvers.solution import (
     Slope,
     Solution,
     Status,
+    Stretch,
     SwitchPlace,
     Verdict,
     Watch,
@@ -102,7 +104,7 @@ def solve(problem: Problem, watch: Watch | None = None, together: Together = IN_
     """
     found = _of_arcs(problem, watch, together) if problem.arcs else _from_starts(problem, watch, together)
     note = _about_switches(problem, found)
-    return replace(found, notes=(*found.notes, note)) if note else found
+    return replace(found, notes=(*found.notes, *([note] if note else []), *sentences(problem, found.stretches)))
 
 
 def _of_arcs(problem: Problem, watch: Watch | None, together: Together) -> Solution:
@@ -379,6 +381,7 @@ def _solution(
         fit=fitted,
         notes=notes,
         switches=switches,
+        stretches=() if brief else _stretches(path, gauged),
     )
 
 
@@ -412,6 +415,22 @@ def _switches(pursuit: Pursuit, gauged: Gauged | None) -> tuple[SwitchPlace, ...
     if gauged is not None and gauged.graph and found:
         places = curve(path).evaluate(gauged.original.independent, places)
     return tuple(SwitchPlace(float(place), switch.of) for place, switch in zip(places, found, strict=True))
+
+
+def _stretches(path: Trajectory, gauged: Gauged | None) -> tuple[Stretch, ...]:
+    """What lies between the switches; of a curve in parametric form what is said of the unknowns themselves."""
+    found = stretches(path)
+    if gauged is None or not found:
+        return found
+    names = {*(unknown.name for unknown in gauged.original.unknowns), *(c.label for c in gauged.original.conditions)}
+    found = tuple(stretch for stretch in found if stretch.of in names)
+    if not gauged.graph:
+        return found
+    x, drawn = gauged.original.independent, curve(path)
+    starts = drawn.evaluate(x, np.array([s.start for s in found])).tolist()
+    ends = drawn.evaluate(x, np.array([s.end for s in found])).tolist()
+    told = (replace(s, start=start, end=end) for s, start, end in zip(found, starts, ends, strict=True))
+    return tuple(stretch for stretch in told if stretch.start < stretch.end)
 
 
 def _about_switches(problem: Problem, found: Solution) -> str:

@@ -23,6 +23,7 @@ from solvers.solution import (
     Price,
     Solution,
     Status,
+    Stretch,
     SweepPoint,
     SwitchPlace,
 )
@@ -52,6 +53,7 @@ def rejoin(beside: Beside, found: Solution) -> Solution:
         changes=changes,
         fit=None if found.fit is None else _fit(beside, found.fit),
         switches=tuple(sorted(set(_switches(beside, found, where)), key=lambda switch: switch.place)),
+        stretches=_stretches(beside, found, where),
     )
 
 
@@ -158,6 +160,27 @@ def _switches(beside: Beside, found: Solution, where: Where) -> Iterator[SwitchP
             at = where.at(piece, switch.place)
             if at is not None:
                 yield SwitchPlace(at, frozenset({name}))
+
+
+def _stretches(beside: Beside, found: Solution, where: Where) -> tuple[Stretch, ...]:
+    """What lies between switches, by quantity and then in order; pieces of an arc with the same to say as one."""
+    told: dict[str, list[Stretch]] = {}
+    for stretch in found.stretches:
+        name, piece = beside.parted(stretch.of)
+        start, end = where.at(piece, stretch.start), where.at(piece, stretch.end)
+        if piece is not None and start is not None and end is not None and end > start:
+            arc = beside.original.arcs[piece.arc].name
+            told.setdefault(name, []).append(replace(stretch, start=start, end=end, of=name, arc=arc))
+    kept: list[Stretch] = []
+    for parts in told.values():
+        for part in sorted(parts, key=lambda part: part.start):
+            last = kept[-1] if kept else None
+            near = 1e-9 * (part.end - part.start)
+            if last and replace(last, start=part.start, end=part.end) == part and part.start - last.end <= near:
+                kept[-1] = replace(last, end=part.end)
+            else:
+                kept.append(part)
+    return tuple(kept)
 
 
 def _diagnosis(beside: Beside, diagnosis: Diagnosis, where: Where) -> Diagnosis:

@@ -74,6 +74,19 @@ def undetermined_of(result: Mapping[str, Any]) -> Rows:
     )
 
 
+def stretches_of(result: Mapping[str, Any]) -> Rows:
+    """Quantity with its arc, begin, end and what it does there."""
+    return tuple(
+        (
+            f"{one['of']} on {one['arc']}" if one["arc"] else str(one["of"]),
+            _place(one["from"], result),
+            _place(one["to"], result),
+            str(one["course"]),
+        )
+        for one in result.get("stretches") or ()
+    )
+
+
 def _independent(result: Mapping[str, Any]) -> tuple[str, str]:
     """Name and unit of the independent variable, from the curve or else from the problem."""
     found = (result.get("curve") or {}).get("independent") or (result.get("problem") or {}).get("independent") or {}

@@ -24,6 +24,7 @@ from web.pages.evidence import (
     prices_of,
     reach_of,
     slopes_of,
+    stretches_of,
     undetermined_of,
 )
 from web.pages.extremals import Found, found_by_starts
@@ -66,6 +67,7 @@ class ResultPage(Page):
     diagnosis: Diagnosis | None = told("Why there is no full result; None where there is one.")
     undetermined: Rows = told("Name, sentence and place of what is free that nothing determines.")
     main_figures: tuple[Figure, ...] = told("The curve itself.")
+    stretches: Rows = told("Quantity, begin, end and what it does there, from switch to switch.")
     fitted: FitView | None = told("The fit to observations; None where nothing was observed.")
     fitted_figures: tuple[Figure, ...] = told("The observations over the curve, and their residuals.")
     extremals: tuple[Found, ...] = told("What several starts led to; empty for one start.")
@@ -129,6 +131,7 @@ def result_page(
         diagnosis=diagnosis_of(result),
         undetermined=undetermined_of(result),
         main_figures=tuple(figure for figure in drawn if figure.key.startswith(MAIN_FIGURES)),
+        stretches=stretches_of(result),
         fitted=fit_view(result, run_id),
         fitted_figures=tuple(figure for figure in drawn if figure.key.startswith(FITTED_FIGURES)),
         extremals=found_by_starts(result),

@@ -210,6 +210,16 @@ def test_what_several_starts_led_to_is_listed_and_drawn(several, hose):
     assert page(hose).extremals == () and 'id="extremals"' not in render(page(hose))
 
 
+def test_from_switch_to_switch_the_page_says_what_controls_do(hose):
+    told = [{"of": "u", "arc": "", "from": 0, "to": 1.25, "course": "singular"},
+            {"of": "v", "arc": "burn", "from": 1.25, "to": 3, "course": "at its upper limit"}]  # fmt: skip
+    shown = page({**hose, "stretches": told})
+    plain = [tuple(cell.replace("\N{NO-BREAK SPACE}", " ") for cell in row) for row in shown.stretches]
+    assert plain == [("u", "0 m", "1.25 m", "singular"), ("v on burn", "1.25 m", "3 m", "at its upper limit")]
+    assert "From switch to switch" in render(shown)
+    assert "From switch to switch" not in render(page(hose))
+
+
 def test_slopes_say_what_each_constant_does_and_what_its_tolerance_leaves_open(hose):
     shown = page(hose)
     first, second = shown.slopes
