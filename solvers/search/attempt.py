@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from solvers.minimise.ipopt import Minimum, Outcome
 from solvers.search.record import End
 from solvers.transcription.collocation import Family
-from solvers.transcription.functions import Compiled
+from solvers.transcription.functions import Compiled, linear_controls
 from solvers.transcription.layout import Layout
 from solvers.transcription.mesh import Mesh, interval, uniform
 from solvers.transcription.natural import at_natural_sizes
@@ -43,6 +43,12 @@ def make_program(compiled: Compiled, mesh: Mesh, where: Layout, z: Array, before
         z = at_natural_sizes(compiled, mesh, where, z)
     scales = find_scales(compiled, where, z, before)
     return transcribe(compiled, mesh, where, scales, find_row_sizes(compiled, where, scales, z))
+
+
+def loose(compiled: Compiled) -> bool:
+    """Whether a control that acts linearly is free somewhere: there many curves may do nearly equally well."""
+    problem = compiled.lowered.problem
+    return bool(problem.calm) if problem.held else bool(linear_controls(compiled))
 
 
 def end_of(minimum: Minimum) -> End:

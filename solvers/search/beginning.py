@@ -10,13 +10,12 @@ import numpy as np
 from solvers.checks.convexity import convex_curves
 from solvers.minimise.ipopt import LEAST_SQUARES_MULTIPLIERS, Minimum, Outcome, Start
 from solvers.minimise.undefined import undefined_places
-from solvers.search.attempt import FIRST_INTERVALS, SOLVED, end_of, first_mesh, make_program
+from solvers.search.attempt import FIRST_INTERVALS, SOLVED, end_of, first_mesh, loose, make_program
 from solvers.search.conflict import VIOLATED, curve_of_least_violation, least_violation_of
 from solvers.search.effort import Minimiser
 from solvers.search.record import End, Pursuit
 from solvers.search.unbounded import in_growing_boxes
 from solvers.starts.guess import first_guess, guesses
-from solvers.transcription.functions import linear_controls
 from solvers.transcription.layout import layout
 from solvers.transcription.mesh import Mesh
 from solvers.transcription.program import Program
@@ -33,8 +32,7 @@ FEW_ITERATIONS = 100
 FALLING: tuple[dict[str, Any], int] = {"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 1e-3}, FEW_ITERATIONS
 ADAPTING: tuple[dict[str, Any], int] = {}, 60
 """What is tried from a related trajectory, and how long.  An adaptive barrier needs a third fewer iterations, but now
-and then it does not come to an end, and where controls act linearly it does not keep to the middle of what they may do.
-"""
+and then it does not come to an end, and where controls are loose it does not keep to the middle of what they may do."""
 NIMBLE_ITERATIONS = 250
 """Iterations after which an adaptive barrier rather goes round in circles than nears an end."""
 STEADY: dict[str, Any] = {"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 0.1} | LEAST_SQUARES_MULTIPLIERS
@@ -107,7 +105,7 @@ def begin_from(
     z = related(start, pursuit.compiled, mesh, where)
     program = make_program(pursuit.compiled, mesh, where, z)
     z = z / program.scale
-    settings = (FALLING, ADAPTING) if linear_controls(pursuit.compiled) else (ADAPTING, FALLING)
+    settings = (FALLING, ADAPTING) if loose(pursuit.compiled) else (ADAPTING, FALLING)
     for options, most in settings[:1] if iterations else settings:
         minimum = minimise_(program, Start(z), options | {"ipopt.max_iter": iterations or most})
         if minimum.outcome in SOLVED:

@@ -11,14 +11,14 @@ from solvers.deadline import Deadline
 from solvers.minimise.ipopt import WARM, Minimum, Start
 from solvers.problem import Problem
 from solvers.search import refinement
-from solvers.search.attempt import SOLVED, end_of, make_program
+from solvers.search.attempt import SOLVED, end_of, loose, make_program
 from solvers.search.beginning import FEW_ITERATIONS, begin, begin_from
 from solvers.search.corners import at_corners
 from solvers.search.effort import Minimiser
 from solvers.search.record import End, Pursuit
 from solvers.search.settling import estimate_errors, settled
 from solvers.solution import Watch
-from solvers.transcription.functions import compile_problem, linear_controls
+from solvers.transcription.functions import compile_problem
 from solvers.transcription.layout import Layout, layout
 from solvers.transcription.lowering import lower
 from solvers.transcription.mesh import Mesh
@@ -160,12 +160,12 @@ def _next(path: Trajectory, mesh: Mesh, minimise_: Minimiser) -> tuple[Program, 
 
 
 def _close(pursuit: Pursuit) -> bool:
-    """Whether a mesh is so good that the next one begins near its end, and determines all controls.
+    """Whether a mesh is so good that the next one begins near its end, and nothing is loose.
 
-    Where one acts linearly, many curves may do nearly equally well: a large barrier keeps to their middle.
+    Where many curves do nearly equally well, a large barrier keeps to their middle.
     """
     good = (pursuit.steps[-1].error or 0.0) <= CLOSE
-    return good and not pursuit.gently and not pursuit.astray and not linear_controls(pursuit.compiled)
+    return good and not pursuit.gently and not pursuit.astray and not loose(pursuit.compiled)
 
 
 def gentle_barrier(mesh: Mesh) -> float:

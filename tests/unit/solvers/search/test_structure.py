@@ -9,6 +9,7 @@ from solvers.formula.evaluate import REAL, evaluate
 from solvers.formula.nodes import Number
 from solvers.minimise.ipopt import Minimum, Outcome
 from solvers.problem import Place
+from solvers.search.attempt import loose
 from solvers.search.holding import released, surely_held_rightly, wrongly_held
 from solvers.search.signals import MOST_SWITCHES, SWITCH, Switch, signals, switches
 from solvers.search.structure import at_the_edge, determined_by, present_switches, shrinking, softened, with_switches
@@ -209,6 +210,17 @@ def test_a_limit_that_it_would_be_better_to_leave_is_let_go_up_to_where_it_is_he
     path = wrongly()
     assert [(h.stretch, h.name) for h in wrongly_held(path)] == [(1, "u")]
     assert released(path, wrongly_held(path)) == [(("u", 0), 0.0, 1.0)]
+
+
+def test_a_control_that_acts_linearly_is_loose_until_it_is_held_everywhere():
+    def arcs(*values):
+        path = path_of(lambda t: np.select([t < 0.2, t < 0.7], values[:2], values[2]))
+        return compiled(with_switches(bang(), switches(path, LINEAR), path, LINEAR))
+
+    assert loose(compiled(bang()))
+    assert loose(arcs(1.0, 0.3, -1.0))
+    assert not loose(arcs(1.0, -1.0, 1.0))
+    assert not loose(compiled(stated()))
 
 
 def test_what_a_coarse_mesh_shows_is_believed_only_where_nothing_pushes_away_from_its_limit():
