@@ -17,8 +17,9 @@ from solvers.answers.fit import fit
 from solvers.answers.prices import prices
 from solvers.answers.sensitivity import Shift, limit_shifts, slopes
 from solvers.answers.stretches import sentences, stretches
-from solvers.checks import curvature, lower_bound, refinement
+from solvers.checks import conditions, curvature, lower_bound, refinement, rounding
 from solvers.checks.redundancy import unambiguous
+from solvers.checks.sampling import Sampler
 from solvers.curve import Curve
 from solvers.deadline import Deadline, in_seconds
 from solvers.diagnosis import diagnose
@@ -32,7 +33,7 @@ from solvers.forms.gauge_arcs import in_parametric_form_by_arcs
 from solvers.forms.graph import as_graph, checks_on_graph, prices_of_original, uprights
 from solvers.forms.rejoin import rejoin
 from solvers.forms.signs import better_below, one_signed, positive, positive_along
-from solvers.forms.slack import SLACK, rounded_functions, with_slacks
+from solvers.forms.slack import SLACK, with_slacks
 from solvers.minimise.ipopt import FLOOR
 from solvers.problem import Continuation, Problem, Seek
 from solvers.search.chatter import chatter
@@ -64,6 +65,7 @@ from solvers.starts.together import IN_TURN, Together
 from solvers.sweep.found import Found, Tools
 from solvers.sweep.points import sweep
 from solvers.tables.usage import table_notes
+from solvers.transcription.functions import SMOOTHING, rounded_functions
 from solvers.transcription.lowering import primed
 from solvers.transcription.trajectory import Trajectory, costate_curve, curve
 from solvers.undetermined import Undetermined, undetermined
@@ -321,14 +323,20 @@ def _solution(
     names = {p.name for p in problem.parameters}
     parameters = {p.name: float(v) for p, v in zip(pursuit.problem.parameters, path.parameters, strict=True)
                   if p.name in names}  # fmt: skip
-    value, value_error = path.value, pursuit.value_error
+    sampler = Sampler(path)
+    rounded_off = rounding.effect(sampler)
+    value, value_error = path.value, pursuit.value_error + rounded_off
     value_error_or_none = value_error if np.isfinite(value_error) else None
     curve_error = pursuit.curve_error if np.isfinite(pursuit.curve_error) else None
     made = checks.run(path, original=problem, value_error=value_error_or_none, curve_error=curve_error,
-                      known=known)  # fmt: skip
+                      known=known, sampler=sampler)  # fmt: skip
+    if conditions.NAME not in known and np.isfinite(taken := conditions.value_anew(sampler)):
+        value_error += abs(taken - value)
+        value_error_or_none = None if value_error_or_none is None else value_error
     verdict = judge(problem.seek, made, pursuit.end)
     if verdict in PROVED and (gap := lower_bound.gap(made)) is not None:  # the bound says it better than the meshes
-        value_error = min(value_error, gap * pursuit.value_size + FLOOR * abs(path.program.value_scale))
+        shown = gap * pursuit.value_size + FLOOR * abs(path.program.value_scale)
+        value_error = min(value_error, shown + rounded_off)
         value_error_or_none, diagnosis = value_error, None
     shape = multipliers = Curve(path.breaks, {})
     if drawn or gauged is not None:
@@ -474,7 +482,8 @@ def _notes(problem: Problem, pursuit: Pursuit, gauged: Gauged | None) -> list[st
         notes.append("abs, max or min in the integrand: written exactly, with auxiliary unknowns that bound them.")
     rounded = sorted(rounded_functions(pursuit.problem))
     if rounded:
-        notes.append(f"{', '.join(rounded)} in the formulas: rounded over a width of 1e-9, so that derivatives exist.")
+        notes.append(f"{', '.join(rounded)} in the formulas: rounded over a width of {SMOOTHING:g}, so that "
+                     "derivatives exist. What that may change of the value is part of its error.")  # fmt: skip
     notes += table_notes(pursuit.paths[-1])
     crowd = None if gauged is not None else chatter(pursuit.paths[-1])
     if crowd is not None and crowd.steady:

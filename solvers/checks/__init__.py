@@ -59,6 +59,7 @@ def run(
     curve_error: float | None = None,
     budget: float | None = None,
     known: Mapping[str, Check] = MappingProxyType({}),
+    sampler: Sampler | None = None,
 ) -> tuple[Check, ...]:
     """Make all checks of a solved mesh.
 
@@ -67,11 +68,11 @@ def run(
     `budget` is how many seconds of processor time they may take in all, at first a second or a fifth of the time limit.
     What it does not suffice for has not been shown: a feasibility or first-order check then fails, one of second order
     says nothing.  Nor does that one where the curve is not even feasible: neighbours of a wrong curve prove nothing.
-    `known` are checks that need not be made here.
+    `known` are checks that need not be made here; `sampler` is one of the path where there is one already.
     """
     deadline = Deadline().within(_budget(path) if budget is None else budget)
     try:
-        sampler = Sampler(path)
+        sampler = sampler or Sampler(path)
         size = max(abs(path.value), 1e-3 * abs(path.program.value_scale))
     except Exception as error:
         reason = f"The curve cannot be looked at: {error}"

@@ -17,10 +17,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from solvers.checks.sampling import Sampler
-from solvers.forms.slack import rounded_functions
 from solvers.search.signals import SWITCH
 from solvers.solution import Check, Status
 from solvers.transcription.evaluation import mapped
+from solvers.transcription.functions import rounded_functions
 
 Array = NDArray[np.float64]
 

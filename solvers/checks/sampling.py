@@ -14,6 +14,7 @@ from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
 from solvers.checks.adjoint import Continued, continued, steps_through
+from solvers.checks.quadrature import integrate
 from solvers.problem import Seek
 from solvers.series import basis
 from solvers.transcription.evaluation import mapped
@@ -215,11 +216,29 @@ class Sampler:
         return [((j, 0) in held, (j, last) in held) for j in range(self.point.states)]
 
     @cached_property
+    def anew(self) -> tuple[Array, float]:
+        """The integrals of the conditions and that of the functional (SI), taken anew."""
+        first = self.point.states + self.point.constraints
+        totals = integrate(self, 0.01 * self.tolerance, lambda sample: self.outputs(sample)[:, first:])
+        return totals[:-1], float(totals[-1])
+
+    @property
+    def end_inputs(self) -> Array:
+        """The inputs of the end function."""
+        path, where = self.path, self.path.program.layout
+        return np.concatenate(
+            [path.nodes[where.at_place].ravel(), path.places, path.parameters, path.z[where.integrals]]
+        )
+
+    @property
+    def end_weights(self) -> Array:
+        """What the outputs of the end function count: the multipliers of its conditions, the sign of the functional."""
+        return np.append(self.path.row_multipliers[self.path.program.rows.conditions :], self.sign)
+
+    @cached_property
     def end_slopes(self) -> tuple[Array, Array]:
         """The inputs of the end function, and the slopes of endpoint term + multipliers x conditions by them."""
-        path, end, where = self.path, self.compiled.end, self.path.program.layout
-        y = np.concatenate([path.nodes[where.at_place].ravel(), path.places, path.parameters, path.z[where.integrals]])
-        weights = np.append(path.row_multipliers[path.program.rows.conditions :], self.sign)
+        end, y, weights = self.compiled.end, self.end_inputs, self.end_weights
         numbers = mapped(end.jacobian, y[None, :], self.constants[None, :])[0]
         slopes = np.zeros(len(y))
         for row, column, number in zip(end.jacobian_rows, end.jacobian_columns, numbers, strict=True):

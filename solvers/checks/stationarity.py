@@ -1,7 +1,7 @@
 """Is the curve an extremal?  Costate equations and stationarity of the Hamiltonian, looked at between the nodes.
 
 With H = integrand + costates x rates + multipliers x constraints, the first variation of the functional is
-integral of (H_u du + (p' + H_x) dx).  Three figures are taken, each as the share of the functional that variations as
+integral of (H_u du + (p' + H_x) dx).  Figures are taken, most as the share of the functional that variations as
 large as the curve itself could gain by it:
 
 - *controls*: the step that the projected gradient of H would take in each control, averaged over the curve (at a bound
@@ -10,6 +10,8 @@ large as the curve itself could gain by it:
   towards an end where the state is fixed, as it must, which also gives infinite costates there their right weight;
   multipliers of constraints on states count as measures, so a costate may jump where such a constraint is touched;
 - *multipliers*: of inequalities, times the distance from their limit, which must vanish;
+- *kinks*: how long the curve runs along concave kinks of formulas, where rounded functions are stationary but the
+  exact ones fall to both sides;
 - *gain*: what a part of that step of the controls gains in H, averaged over the curve; a few times the tolerance of the
   value is its limit, however short the stretch is on which it could be had.
 
@@ -24,6 +26,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
+from solvers.checks import rounding
 from solvers.checks.adjoint import variation
 from solvers.checks.sampling import HALVES, Sampler
 from solvers.solution import Check, Status
@@ -43,11 +46,11 @@ Finding = tuple[float, float, str, str]
 
 
 def check(sampler: Sampler) -> Check:
-    """The largest of the three figures against the square root of the tolerance."""
+    """The largest of these figures against the square root of the tolerance."""
     threshold = float(np.sqrt(sampler.tolerance))
     step = _projected_step(sampler)
     findings = [*_controls(sampler, step), *_costates(sampler), *_multipliers(sampler),
-                *_gain(sampler, step, threshold)]  # fmt: skip
+                *_gain(sampler, step, threshold), *_kinks(sampler, threshold)]  # fmt: skip
     if not findings:
         return Check(NAME, Status.NOT_APPLICABLE, "There is no function to vary.")
     figure, place, subject, sentence = max(findings, key=lambda finding: finding[0])
@@ -98,6 +101,16 @@ def _gain(sampler: Sampler, step: Array, threshold: float) -> list[Finding]:
     name = sampler.control_names[int(np.argmax(np.abs(step[worst]) / sampler.control_sizes))]
     return [(threshold * figure / (ROOM * sampler.tolerance), float(sample.places[worst]), name,
              f"Other values of {name} could gain {figure:.1e} of the functional.")]  # fmt: skip
+
+
+def _kinks(sampler: Sampler, threshold: float) -> list[Finding]:
+    """The share of the range along concave kinks, so scaled that its limit is the threshold."""
+    found = rounding.concave(sampler)
+    if found is None:
+        return []
+    share, place = found
+    return [(threshold * share / rounding.STRETCH, place, "", f"On {share:.1%} of the range the curve runs along a "
+             "kink from which the functional falls to both sides.")]  # fmt: skip
 
 
 def _projected_step(sampler: Sampler) -> Array:

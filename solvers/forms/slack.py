@@ -10,10 +10,8 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import replace
 
-from solvers.formula.nodes import Call, Name, Negative, Node, Number, Product, Sum, walk
-from solvers.observations import terminal
+from solvers.formula.nodes import Call, Name, Negative, Node, Number, Product, Sum
 from solvers.problem import Condition, Problem, Seek, Unknown
-from solvers.transcription.functions import ROUNDED
 
 SLACK = "slack"
 """What the names of the added unknowns begin with; a blank follows, so that no user can write one."""
@@ -85,12 +83,3 @@ class _Slacks:
             body = Sum((slack, argument), (False, subtracted))
             self.constraints.append(Condition(body, lower, upper, f"{kink.function} from {side}", ""))
         return slack
-
-
-def rounded_functions(problem: Problem) -> set[str]:
-    """The functions with kinks that are left in the formulas of a problem and so are rounded."""
-    trees = [tree for tree in (problem.integrand, terminal(problem)) if tree is not None]
-    trees += [tree for _, tree in problem.where] + [c.body for c in problem.constraints]
-    trees += [c.body for c in (*problem.endpoints, *problem.integrals)]
-    trees += [side for equation in problem.dynamics for side in (equation.left, equation.right)]
-    return {node.function for tree in trees for node in walk(tree) if isinstance(node, Call)} & ROUNDED

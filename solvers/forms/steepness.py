@@ -11,7 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from solvers.transcription.evaluation import mapped, point_inputs
-from solvers.transcription.functions import Compiled, rounds
+from solvers.transcription.functions import Compiled, rounded_functions
 from solvers.transcription.layout import Layout
 
 Array = NDArray[np.float64]
@@ -27,7 +27,7 @@ def steep_slopes(compiled: Compiled, where: Layout, z: Array, sizes: Array) -> d
 
     `sizes` are those of the slopes.  An unknown for which there is none is left out.
     """
-    if rounds(compiled.lowered.problem):  # what is rounded has a steepness of its own
+    if rounded_functions(compiled.lowered.problem):  # what is rounded has a steepness of its own
         return {}
     point = compiled.point
     v, d = point_inputs(compiled, where, z)

@@ -7,7 +7,7 @@ function that finds the piece and hands out its coefficients.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from math import perm
 from weakref import WeakKeyDictionary
@@ -37,6 +37,11 @@ class Lookups:
 
     def __init__(self) -> None:
         self._found: dict[tuple[Table, tuple[int, ...]], _Found] = {}
+
+    @property
+    def operations(self) -> dict[str, Callable[..., ca.SX]]:
+        """The operations of formulas that are done here."""
+        return {"table": self.value}
 
     def value(self, table: Table, orders: Sequence[int], *arguments: ca.SX) -> ca.SX:
         """The value of a table or of its derivative, as a polynomial with symbols for its coefficients."""

@@ -14,7 +14,7 @@ memory).
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from enum import Enum
 from functools import cached_property
 from math import perm
@@ -27,8 +27,8 @@ from solvers.units import PLAIN, Unit
 
 Array = NDArray[np.float64]
 
-CORNER = 1e-3
-"""How far from a corner it is rounded off, relative to the shorter of the steps beside it."""
+CORNER = 1e-4
+"""How far from a corner a table is rounded off, relative to the shorter of the steps beside it."""
 
 
 class Between(Enum):
@@ -68,7 +68,8 @@ class Pieces:
 class Table:
     """A measured function, in SI units.
 
-    `knots` are n increasing places of each argument, `values` (n, or n x n') what was measured there.
+    `knots` are n increasing places of each argument, `values` (n, or n x n') what was measured there; `corner` is how
+    far from its corners it is rounded off, relative to the shorter of the steps beside them.
     """
 
     name: str
@@ -79,6 +80,22 @@ class Table:
     outside: Outside = Outside.REFUSE
     unit: Unit = PLAIN
     argument_units: tuple[Unit, ...] = ()
+    corner: float = CORNER
+
+    @property
+    def has_corners(self) -> bool:
+        """Whether it has corners that are rounded off."""
+        return self.between is Between.LINEAR or self.outside is Outside.HOLD
+
+    @cached_property
+    def exact(self) -> Table:
+        """The same table with sharp corners."""
+        return replace(self, corner=0.0)
+
+    @property
+    def reaches(self) -> tuple[float, ...]:
+        """How far from corners of each argument they are rounded off at most."""
+        return tuple(self.corner * float(np.diff(knots).max()) for knots in self.knots)
 
     @property
     def ranges(self) -> tuple[tuple[float, float], ...]:
@@ -132,20 +149,19 @@ def differentiated(coefficients: Array, orders: Sequence[int]) -> Array:
 
 def _pieces(table: Table) -> Pieces:
     """Along one argument after the other: the polynomials of the first have coefficients that run along the second."""
-    hold = table.outside is Outside.HOLD
     if len(table.knots) == 1:
         (knots,) = table.knots
-        nodes, cells = _along(knots, table.values, None, table.between, hold)
+        nodes, cells = _along(table, knots, table.values, None)
         return Pieces((_edges(nodes),), (_origins(nodes),), cells)
     across, up = table.knots
     columns: Array | None = None
     if table.between is Between.MONOTONE:
         slopes, rates, twists = keep_shape(across, up, table.values)
-        nodes, rows = _along(across, table.values, slopes, table.between, hold)
-        columns = np.moveaxis(_along(across, rates, twists, table.between, hold)[1], 2, 0)
+        nodes, rows = _along(table, across, table.values, slopes)
+        columns = np.moveaxis(_along(table, across, rates, twists)[1], 2, 0)
     else:
-        nodes, rows = _along(across, table.values, None, table.between, hold)
-    heights, cells = _along(up, np.moveaxis(rows, 2, 0), columns, table.between, hold)
+        nodes, rows = _along(table, across, table.values, None)
+    heights, cells = _along(table, up, np.moveaxis(rows, 2, 0), columns)
     return Pieces((_edges(nodes), _edges(heights)), (_origins(nodes), _origins(heights)), cells.transpose(2, 0, 3, 1))
 
 
@@ -158,22 +174,24 @@ def _origins(nodes: Array) -> Array:
     return np.concatenate([nodes[:1], nodes])
 
 
-def _along(knots: Array, values: Array, slopes: Array | None, between: Between, hold: bool) -> tuple[Array, Array]:
+def _along(table: Table, knots: Array, values: Array, slopes: Array | None) -> tuple[Array, Array]:
     """Nodes, and the polynomials (C x degree+1 x k...) between and beyond them, of `values` (n x k...) at n knots."""
-    if between is Between.LINEAR:
-        nodes, values, slopes = _rounded_lines(knots, values, hold)
+    hold = table.outside is Outside.HOLD
+    if table.between is Between.LINEAR:
+        nodes, values, slopes = _rounded_lines(knots, values, hold, table.corner)
         return nodes, _cells(nodes, values, slopes, 2)
     if slopes is None:
-        find = spline_slopes if between is Between.SMOOTH else shape_preserving_slopes
+        find = spline_slopes if table.between is Between.SMOOTH else shape_preserving_slopes
         slopes = find(knots, values.reshape(len(knots), -1)).reshape(values.shape)
     if hold:
-        knots, values, slopes = _rounded_ends(knots, values, slopes)
+        knots, values, slopes = _rounded_ends(knots, values, slopes, table.corner)
     return knots, _cells(knots, values, slopes, 3)
 
 
 def _cells(nodes: Array, values: Array, slopes: Array, degree: int) -> Array:
     """Polynomials with these values and slopes at n nodes: n - 1 between them, a line before and one behind."""
-    steps = np.diff(nodes).reshape(-1, *[1] * (values.ndim - 1))
+    steps = np.diff(nodes)
+    steps = np.where(steps == 0, 1.0, steps).reshape(-1, *[1] * (values.ndim - 1))  # at a sharp corner two are one
     rises = np.diff(values, axis=0) / steps
     first, last = slopes[:-1], slopes[1:]
     if degree == 2:
@@ -186,13 +204,13 @@ def _cells(nodes: Array, values: Array, slopes: Array, degree: int) -> Array:
     return np.concatenate([beyond[0], np.stack(between, axis=1), beyond[1]])
 
 
-def _rounded_lines(knots: Array, values: Array, hold: bool) -> tuple[Array, Array, Array]:
+def _rounded_lines(knots: Array, values: Array, hold: bool, corner: float) -> tuple[Array, Array, Array]:
     """A broken line by nodes, values and slopes, with two nodes for every corner."""
     steps = np.diff(knots)
     rises = np.diff(values, axis=0) / steps.reshape(-1, *[1] * (values.ndim - 1))
     still = np.zeros_like(rises[:1])
     rises = np.concatenate([still if hold else rises[:1], rises, still if hold else rises[-1:]])
-    reach = CORNER * np.minimum(np.append(steps, steps[-1]), np.append(steps[0], steps))
+    reach = corner * np.minimum(np.append(steps, steps[-1]), np.append(steps[0], steps))
     down, up = (sign * reach.reshape(-1, *[1] * (values.ndim - 1)) for sign in (-1, 1))
     pairs = [np.stack(pair, axis=1) for pair in (
         (knots - reach, knots + reach),
@@ -204,13 +222,13 @@ def _rounded_lines(knots: Array, values: Array, hold: bool) -> tuple[Array, Arra
     return nodes[kept], heights[kept], slopes[kept]
 
 
-def _rounded_ends(knots: Array, values: Array, slopes: Array) -> tuple[Array, Array, Array]:
+def _rounded_ends(knots: Array, values: Array, slopes: Array, corner: float) -> tuple[Array, Array, Array]:
     """Two nodes for each end, at which a curve turns into its continuation at rest."""
     found: list[tuple[Array, Array, Array]] = []
     cells = _cells(knots, values, slopes, 3)
     for end, cell, sign in ((0, 1, 1.0), (-1, -2, -1.0)):
         step = abs(float(knots[end] - knots[1 if end == 0 else -2]))
-        reach = sign * CORNER * step
+        reach = sign * corner * step
         away = reach if end == 0 else step + reach
         c = cells[cell]
         inside = c[0] + away * (c[1] + away * (c[2] + away * c[3])), c[1] + away * (2 * c[2] + 3 * away * c[3])

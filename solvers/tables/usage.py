@@ -34,9 +34,12 @@ def table_notes(path: Trajectory) -> Iterator[str]:
             values = along.value(argument)
             if np.isfinite(values).all():
                 told.add(_range(table, index, text(argument), float(values.min()), float(values.max())))
-        if table.between is Between.LINEAR:
-            told.add(f"{table.name} is linear between its points: its corners are rounded off over a thousandth of "
-                     "the steps beside them, so that derivatives exist.")  # fmt: skip
+        if table.has_corners:
+            which = (
+                "is linear between its points: its corners" if table.between is Between.LINEAR else "holds: its ends"
+            )
+            told.add(f"{table.name} {which} are rounded off over {table.corner:g} of the steps beside them, so that "
+                     "derivatives exist. What that may change of the value is part of its error.")  # fmt: skip
     yield from sorted(told)
 
 

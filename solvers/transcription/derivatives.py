@@ -23,7 +23,26 @@ class Differentiated:
 
     @cached_property
     def value(self) -> ca.Function:
-        return ca.Function(self._name, [self._v, self._d], self._lookups.settled([ca.densify(self._outputs)]))
+        return self.beside(self._name, self._outputs)
+
+    @property
+    def expressions(self) -> ca.SX:
+        """The outputs as expressions of the symbols."""
+        return self._outputs
+
+    @property
+    def varied(self) -> ca.SX:
+        """The symbols v, by which it is differentiated."""
+        return self._v
+
+    @property
+    def lookups(self) -> Lookups:
+        """What looks up the tables of the outputs."""
+        return self._lookups
+
+    def beside(self, name: str, expressions: ca.SX) -> ca.Function:
+        """Another function of the same inputs."""
+        return ca.Function(name, [self._v, self._d], self._lookups.settled([ca.densify(expressions)]))
 
     @cached_property
     def _slopes(self) -> ca.SX:

@@ -24,41 +24,58 @@ from solvers.transcription.derivatives import Differentiated
 from solvers.transcription.limits import number, quantity_bounds
 from solvers.transcription.lowering import Lowered, Quantity, simple_bound
 
+Operation = Callable[..., ca.SX]
+
 SMOOTHING = 1e-9
 """Width, relative to one, over which `abs` and its kin are rounded so that they have derivatives."""
 
 
-def _smooth_abs(x: ca.SX) -> ca.SX:
+def smooth_abs(x: ca.SX) -> ca.SX:
+    """The rounded absolute value."""
     return ca.sqrt(x * x + SMOOTHING**2)
 
 
-def _least(*values: ca.SX) -> ca.SX:
-    least = values[0]
-    for value in values[1:]:
-        least = (least + value - _smooth_abs(least - value)) / 2
-    return least
+def smooth_sign(x: ca.SX) -> ca.SX:
+    """The rounded sign."""
+    return x / smooth_abs(x)
+
+
+def with_kinks(absolute: Operation, sign: Operation) -> dict[str, Operation]:
+    """The functions with kinks, made of an absolute value and a sign."""
+
+    def least(*values: ca.SX) -> ca.SX:
+        least = values[0]
+        for value in values[1:]:
+            least = (least + value - absolute(least - value)) / 2
+        return least
+
+    return {"abs": absolute, "sign": sign, "min": least, "max": lambda *values: -least(*(-value for value in values))}
 
 
 ROUNDED = frozenset({"abs", "min", "max", "sign"})
 """The functions with kinks, which are rounded."""
 
 
-def rounds(problem: Problem) -> bool:
-    """Whether any formula of a problem without arcs holds a function that is rounded."""
+def nodes_of(problem: Problem) -> Iterator[Node]:
+    """All nodes of all formulas of a problem without arcs."""
     trees = [tree for tree in (problem.integrand, problem.endpoint) if tree is not None]
     trees += [tree for _, tree in problem.where] + [c.body for c in problem.conditions]
     trees += [side for equation in problem.dynamics for side in (equation.left, equation.right)]
     trees += [observation.body for observation in problem.observations]
-    return any(isinstance(node, Call) and node.function in ROUNDED for tree in trees for node in walk(tree))
+    yield from (node for tree in trees for node in walk(tree))
 
 
-OPERATIONS: dict[str, Callable[..., ca.SX]] = {
+def rounded_functions(problem: Problem) -> set[str]:
+    """The functions with kinks in the formulas of a problem without arcs: they are rounded."""
+    return {node.function for node in nodes_of(problem) if isinstance(node, Call)} & ROUNDED
+
+
+OPERATIONS: dict[str, Operation] = {
     "sqrt": ca.sqrt, "exp": ca.exp, "log": ca.log, "sin": ca.sin, "cos": ca.cos, "tan": ca.tan,
     "asin": ca.asin, "acos": ca.acos, "atan": ca.atan, "atan2": ca.atan2,
     "sinh": ca.sinh, "cosh": ca.cosh, "tanh": ca.tanh,
-    "abs": _smooth_abs, "sign": lambda x: x / _smooth_abs(x), "hypot": lambda x, y: ca.sqrt(x * x + y * y),
-    "min": _least, "max": lambda *values: -_least(*(-value for value in values)),
-    "power": lambda base, exponent: base**exponent,
+    "hypot": lambda x, y: ca.sqrt(x * x + y * y), "power": lambda base, exponent: base**exponent,
+    **with_kinks(smooth_abs, smooth_sign),
 }  # fmt: skip
 
 
@@ -113,7 +130,7 @@ class Environment:
         self._symbols = dict(symbols)
         self._numbers = dict(numbers)
         self._abbreviations = dict(lowered.problem.where)
-        self._operations = OPERATIONS | {"table": lookups.value}
+        self._operations = OPERATIONS | lookups.operations
         self._value_at = value_at
 
     def formula(self, tree: Node) -> ca.SX:
@@ -136,8 +153,8 @@ def _entries(column: ca.SX) -> list[ca.SX]:
     return column.elements()  # type: ignore[return-value]  # the stubs know no scalar symbols
 
 
-def compile_problem(lowered: Lowered) -> Compiled:
-    """Build both functions; costs some milliseconds, once per problem."""
+def compile_problem(lowered: Lowered, lookups: type[Lookups] = Lookups) -> Compiled:
+    """Build both functions; costs some milliseconds, once per problem.  `lookups` makes what looks up their tables."""
     problem = lowered.problem
     constants = ca.SX.sym("c", len(problem.constants))
     parameters = ca.SX.sym("p", len(problem.parameters))
@@ -145,14 +162,19 @@ def compile_problem(lowered: Lowered) -> Compiled:
     numbers |= dict(zip((c.name for c in problem.constants), _entries(constants), strict=True))
     numbers |= dict(zip((p.name for p in problem.parameters), _entries(parameters), strict=True))
     integrands: list[Node] = []
-    conditions, fixed, rims, end = _end_function(lowered, numbers, parameters, constants, integrands)
-    point, pointwise, bounds = _point_function(lowered, numbers, parameters, constants, integrands)
+    conditions, fixed, rims, end = _end_function(lowered, numbers, parameters, constants, integrands, lookups())
+    point, pointwise, bounds = _point_function(lowered, numbers, parameters, constants, integrands, lookups())
     values = tuple(c.value for c in problem.constants)
     return Compiled(lowered, point, end, pointwise, bounds, conditions, fixed, rims, values)
 
 
 def _point_function(
-    lowered: Lowered, numbers: dict[str, ca.SX], parameters: ca.SX, constants: ca.SX, integrands: list[Node]
+    lowered: Lowered,
+    numbers: dict[str, ca.SX],
+    parameters: ca.SX,
+    constants: ca.SX,
+    integrands: list[Node],
+    lookups: Lookups,
 ) -> tuple[PointFunction, tuple[Condition, ...], tuple[tuple[Quantity, Condition], ...]]:
     problem = lowered.problem
     x = ca.SX.sym("x", len(lowered.states))
@@ -160,7 +182,6 @@ def _point_function(
     start, end, fraction = ca.SX.sym("a"), ca.SX.sym("b"), ca.SX.sym("s")
     length = end - start
     symbols = dict(zip((*lowered.states, *lowered.controls), (*_entries(x), *_entries(u)), strict=True))
-    lookups = Lookups()
     here = Environment(lowered, symbols, numbers | {problem.independent: start + fraction * length}, lookups)
     rates = [length * here.formula(Name(name, order + 1)) for name, order in lowered.states]
     zero = Number(0.0, "0")
@@ -185,14 +206,18 @@ def _point_function(
 
 
 def _end_function(
-    lowered: Lowered, numbers: dict[str, ca.SX], parameters: ca.SX, constants: ca.SX, integrands: list[Node]
+    lowered: Lowered,
+    numbers: dict[str, ca.SX],
+    parameters: ca.SX,
+    constants: ca.SX,
+    integrands: list[Node],
+    lookups: Lookups,
 ) -> tuple[
     tuple[Condition, ...], tuple[tuple[int, int, Condition], ...], tuple[tuple[int, int, Condition], ...], EndFunction
 ]:
     problem = lowered.problem
     values = [ca.SX.sym(f"x{i}", len(lowered.states)) for i in range(len(problem.places))]
     places = ca.SX.sym("t", len(problem.places))
-    lookups = Lookups()
     environments = [
         Environment(
             lowered,

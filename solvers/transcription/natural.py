@@ -17,7 +17,7 @@ from numpy.polynomial import polynomial
 from numpy.typing import NDArray
 
 from solvers.transcription.evaluation import end_inputs, mapped, point_inputs
-from solvers.transcription.functions import SMOOTHING, Compiled, rounds
+from solvers.transcription.functions import SMOOTHING, Compiled, rounded_functions
 from solvers.transcription.layout import Layout
 from solvers.transcription.limits import constants_of, interval_of, quantity_bounds
 from solvers.transcription.mesh import Mesh
@@ -83,7 +83,7 @@ def _natural(compiled: Compiled, mesh: Mesh, where: Layout, z: Array, name: str,
     change = np.minimum(np.where(np.isfinite(change), change, 0.0), 1.0)
     change[np.isfinite(growth[1:-1]) & np.isnan(growth[2:])] = 1.0  # beyond this size it has no value
     change = change.sum(axis=1)
-    if rounds(compiled.lowered.problem):
+    if rounded_functions(compiled.lowered.problem):
         change[np.abs(np.log10(sizes[1:-1] / SMOOTHING)) < 2] = 0.0
     if not change.max(initial=0.0) >= CHANGE:
         return None

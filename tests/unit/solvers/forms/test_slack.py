@@ -2,9 +2,10 @@
 
 import pytest
 
-from solvers.forms.slack import rounded_functions, with_slacks
+from solvers.forms.slack import with_slacks
 from solvers.solution import Verdict
 from solvers.solve import solve
+from solvers.transcription.functions import rounded_functions
 from tests.unit.solvers.problems import stated
 
 LEAST = [

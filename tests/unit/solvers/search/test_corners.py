@@ -4,6 +4,7 @@ import numpy as np
 import pytest
 
 from solvers.search.corners import at_corners
+from solvers.tables.table import CORNER
 from solvers.transcription.mesh import uniform
 from tests.unit.solvers.problems import path_along, stated
 
@@ -44,7 +45,7 @@ def test_corners_of_the_independent_variable_become_breaks(integrand):
 def test_both_ends_of_a_rounded_corner_become_breaks():
     curve = path("u^2 + d(t)*x", "linear")
     mesh = at_corners(curve.program.mesh, curve)
-    reach = 0.23e-3  # a thousandth of the shorter step
+    reach = 0.23 * CORNER  # the shorter step is the first
     assert not missing([0.23 - reach, 0.23 + reach], mesh)
 
 
