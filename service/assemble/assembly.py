@@ -25,7 +25,14 @@ from service.assemble.relations import Sides, conditions, convert, says_nothing,
 from service.assemble.resolving import wrong_names
 from service.assemble.scopes import out_of_scope, without_place
 from service.assemble.spots import Spot, spot_of
-from service.assemble.sweeps import check_extremes, check_varied_names, read_continuation, read_sweeps
+from service.assemble.sweeps import (
+    check_extremes,
+    check_places,
+    check_varied_names,
+    check_varied_use,
+    read_continuation,
+    read_sweeps,
+)
 from service.complaints import Complaint, Stage, refuse
 from service.spec import Document
 from service.units import Measure
@@ -81,8 +88,10 @@ def assemble(document: Document) -> Problem:
     builder = _Builder(document, formulas, meaning, declared, guesses, units, places, sides, readings)
     problem = covered(builder.problem(value_unit, tuple(measured.tables.values())), formulas, meaning, builder.settle)
     check(problem)
+    check_varied_use(document, names, formulas)
     continuation = read_continuation(document, names, declared)
     problem = replace(problem, continuation=continuation, sweeps=read_sweeps(document, names, declared))
+    check_places(problem, document, names)
     check_extremes(problem, document, names)
     return problem
 

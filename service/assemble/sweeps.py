@@ -3,31 +3,36 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import replace
-from itertools import pairwise
+from itertools import pairwise, product
 
 import numpy as np
 
 from service.assemble.counting import check
 from service.assemble.declared import Declared, beyond
+from service.assemble.domain import value_of
+from service.assemble.formulas import Formula, Formulas
 from service.assemble.names import Kind, Names
-from service.complaints import Complaint, Refused, Stage, closest, pointer, refuse
+from service.assemble.spots import SAME
+from service.complaints import Complaint, Refused, Stage, closest, listing, pointer, refuse
 from service.spec import Document
 from service.spec.model import SweepPart
+from solvers.formula.nodes import Name
 from solvers.problem import Continuation, Problem, Sweep
 
 MOST_POINTS = 2_000
 """Points of a sweep, all values of two constants together."""
 
 
+STEPS = 32
+"""Values on the way of a continuation at which the order of the places is looked at."""
+
+
 def check_varied_names(document: Document, names: Names) -> None:
     """What is varied is a constant.  Raises `Refused` (stage names)."""
     complaints = []
-    places = {name: pointer("sweep", name) for name in document.sweep}
-    if document.continuation is not None:
-        places[document.continuation.constant] = pointer("continuation", "constant")
-    for name, place in places.items():
+    for name, place in _varied(document).items():
         kind = names.kinds.get(names.written.get(name, name))
         if kind is not Kind.CONSTANT:
             near = closest(name, names.of(Kind.CONSTANT))
@@ -35,6 +40,34 @@ def check_varied_names(document: Document, names: Names) -> None:
             hint = f"Did you mean “{near}”?" if near else "Only constants are varied; declare it under constants."
             complaints.append(Complaint(place, None, "unknown-name", f"{what}; no values can be put in.", hint))
     refuse(Stage.NAMES, complaints)
+
+
+def _varied(document: Document) -> dict[str, str]:
+    """What is varied, as written, with the JSON pointer of that."""
+    places = {name: pointer("sweep", name) for name in document.sweep}
+    if document.continuation is not None:
+        places[document.continuation.constant] = pointer("continuation", "constant")
+    return places
+
+
+def check_varied_use(document: Document, names: Names, formulas: Formulas) -> None:
+    """What is varied is in a formula that counts.  Raises `Refused` (stage conditions)."""
+    definitions = {name: _names(parts) for name, parts in formulas.definitions.items()}
+    abbreviations = {id(part) for parts in formulas.definitions.values() for part in parts}
+    used, rest = set[str](), _names(formula for formula in formulas.all() if id(formula) not in abbreviations)
+    while rest:
+        used |= rest
+        rest = {name for found in rest for name in definitions.get(found, ())} - used
+    complaints = [
+        Complaint(place, None, "unused", f"“{name}” is in no formula: varying it changes nothing.",
+                  "Use it in a formula, or vary another constant.")
+        for name, place in _varied(document).items() if names.written[name] not in used
+    ]  # fmt: skip
+    refuse(Stage.CONDITIONS, complaints)
+
+
+def _names(formulas: Iterable[Formula]) -> set[str]:
+    return {node.name for formula in formulas for node in formula.nodes if isinstance(node, Name)}
 
 
 def read_sweeps(document: Document, names: Names, declared: Declared) -> tuple[Sweep, ...]:
@@ -66,6 +99,49 @@ def read_continuation(document: Document, names: Names, declared: Declared) -> C
         message = f"{part.constant} has this value already."
         refuse(Stage.CONDITIONS, [Complaint(place, None, "empty-interval", message, "Choose another value.")])
     return Continuation(name, to)
+
+
+def check_places(problem: Problem, document: Document, names: Names) -> None:
+    """The places keep their order for every value.  Raises `Refused` (stage conditions) at the first that does not."""
+    given = {constant.name: constant.value for constant in problem.constants}
+    written = {names.written[name]: name for name in _varied(document)}
+    if problem.sweeps:
+        points = product(*(sweep.values for sweep in problem.sweeps))
+        swept = [sweep.constant for sweep in problem.sweeps]
+        varied = [(dict(zip(swept, point, strict=True)), pointer("sweep", written[swept[0]])) for point in points]
+    elif problem.continuation is not None:
+        constant, to = problem.continuation.constant, problem.continuation.to
+        way = np.linspace(given[constant], to, STEPS + 1)[1:].tolist()
+        varied = [({constant: value}, pointer("continuation", "to")) for value in way]
+    else:
+        return
+    units = {constant.name: constant.unit for constant in problem.constants}
+    for values, place in varied:
+        wrong = _out_of_order(problem, given | values)
+        if wrong:
+            shown = (f"{written[name]} = {value / units[name].factor:g}" for name, value in values.items())
+            message = f"For {listing(shown)}, {wrong}"
+            hint = "Take only values for which the places keep their order and lie apart."
+            refuse(Stage.CONDITIONS, [Complaint(place, None, "empty-interval", message, hint)])
+
+
+def _out_of_order(problem: Problem, constants: Mapping[str, float]) -> str:
+    """Which place never lies beyond one that should be before it; empty where the order can be kept."""
+    rooms = {parameter.name: (parameter.lower, parameter.upper) for parameter in problem.parameters}
+    farthest, before = -math.inf, problem.places[0].label
+    for place in problem.places:
+        if isinstance(place.tree, Name) and place.tree.name in rooms:
+            low, high = rooms[place.tree.name]
+        else:
+            try:
+                low = high = value_of(place.tree, constants)
+            except (ArithmeticError, ValueError):
+                return f"the place {place.label} has no value."
+        if high <= farthest + SAME * max(abs(high), abs(farthest)):
+            return f"the place {place.label} does not lie beyond {before}."
+        if low > farthest:
+            farthest, before = low, place.label
+    return ""
 
 
 def check_extremes(problem: Problem, document: Document, names: Names) -> None:
