@@ -32,7 +32,7 @@ from solvers.forms.gauge import Form, Gauged, in_parametric_form
 from solvers.forms.gauge_arcs import in_parametric_form_by_arcs
 from solvers.forms.graph import as_graph, checks_on_graph, prices_of_original, uprights
 from solvers.forms.rejoin import rejoin
-from solvers.forms.signs import better_below, one_signed, positive, positive_along
+from solvers.forms.signs import better_below, one_signed, positive, positive_along, where_defined
 from solvers.forms.slack import SLACK, with_slacks
 from solvers.minimise.ipopt import FLOOR
 from solvers.problem import Continuation, Problem, Seek
@@ -75,6 +75,9 @@ Array = NDArray[np.float64]
 
 EARLY = {End.INFEASIBLE: Verdict.INFEASIBLE, End.UNBOUNDED: Verdict.NO_OPTIMUM}
 """Verdicts that need no curve."""
+
+LOST = (End.FAILED, End.UNDEFINED)
+"""Ends from which another first guess may help."""
 
 PROVED = (Verdict.GLOBAL_MINIMUM, Verdict.GLOBAL_MAXIMUM)
 
@@ -238,6 +241,9 @@ def _found(problem: Problem, watch: Watch | None, deadline: Deadline, form: Form
         room = deadline.within(DOUBTFUL * deadline.left) if doubtful else deadline
         gauged = gauged if gauged.squared else at_constant_speed(gauged, look())
         pursuit = _in_given_form(with_slacks(gauged.problem), watch, room)
+        if squared and pursuit.end in LOST and gauged.graph:  # its square has values where a root has none
+            gauged = where_defined(at_constant_speed(gauged, look()))
+            pursuit = _in_given_form(with_slacks(gauged.problem), watch, room)
         if squared and pursuit.solved and not _rightly_squared(gauged, pursuit, doubtful):
             continue
         if doubtful and pursuit.solved and pursuit.end is End.TIME:

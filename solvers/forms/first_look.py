@@ -63,11 +63,11 @@ def first_look(problem: Problem) -> FirstLook:
 
 
 def at_constant_speed(gauged: Gauged, look: FirstLook) -> Gauged:
-    """A graph in parametric form at constant speed that begins with the first guess, told at that speed.
+    """A graph in parametric form that begins with the first guess, told at constant speed.
 
-    A guess that keeps to the gauge leaves only the problem's own conditions to be met.
+    Where that is the gauge, the guess leaves only the problem's own conditions to be met.
     """
-    if not gauged.graph or gauged.squared:
+    if not gauged.graph:
         return gauged
     steps = np.stack([np.diff(values) / look.sizes[name] for name, values in look.curve.items()])
     way = np.concatenate([[0.0], np.cumsum(np.linalg.norm(steps, axis=0))])

@@ -8,21 +8,27 @@ near a curve on which the integrand is positive both problems have the same extr
 
 from __future__ import annotations
 
+from dataclasses import replace
+from functools import partial
+
 import numpy as np
 from numpy.typing import NDArray
 
-from solvers.checks.composition import shape_of
+from solvers.checks.composition import Shape, shape_of
 from solvers.checks.convexity import known, unfolding
 from solvers.curve import Curve
-from solvers.forms.gauge import Gauged
+from solvers.forms.gauge import ZERO, Gauged
 from solvers.formula.evaluate import evaluate
-from solvers.formula.nodes import Node
-from solvers.problem import Problem, Seek
+from solvers.formula.nodes import At, Call, Name, Node, walk
+from solvers.problem import Condition, Problem, Seek
 from solvers.starts.sketch import ARRAYS
 from solvers.transcription.limits import number
 from solvers.transcription.trajectory import Trajectory, curve
 
 Array = NDArray[np.float64]
+
+TINY = 1e-100
+"""So far below zero is below it, to interval arithmetic."""
 
 MIDDLES = (np.arange(8) + 0.5) / 8
 """Where every interval is looked at."""
@@ -45,6 +51,28 @@ def one_signed(problem: Problem) -> bool:
         return False
     shape = shape_of(problem.integrand, known(problem, constants, first, last), unfolding(problem))
     return shape.high <= 0 if problem.seek is Seek.MAXIMUM else shape.low >= 0
+
+
+def where_defined(gauged: Gauged) -> Gauged:
+    """The same with unknowns held where square roots have values that are squared: (1 + y'^2)/y has one below 0 too.
+
+    Held is an unknown below zero of which what is under a root is proved to be nowhere positive, whatever else.
+    """
+    problem = gauged.problem
+    leaf = known(problem, {c.name: c.value for c in problem.constants}, 0.0, 1.0)
+    unfold = unfolding(problem)
+
+    def below(name: str, node: Name | At) -> Shape:
+        found = leaf(node)
+        own = isinstance(node, Name) and (node.name, node.order) == (name, 0)
+        return replace(found, high=-TINY) if own else found
+
+    radicands = [node.arguments[0] for tree in gauged.roots for node in walk(tree)
+                 if isinstance(node, Call) and node.function == "sqrt"]  # fmt: skip
+    held = [unknown.name for unknown in problem.unknowns
+            if any(shape_of(tree, partial(below, unknown.name), unfold).high <= 0 for tree in radicands)]  # fmt: skip
+    limits = [Condition(Name(name), ZERO, None, f"{name} where the integrand has values", "") for name in held]
+    return replace(gauged, problem=replace(problem, constraints=(*problem.constraints, *limits)))
 
 
 def positive(values: Array) -> bool:

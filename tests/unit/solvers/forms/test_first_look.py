@@ -52,8 +52,11 @@ def test_a_varied_start_is_drawn_once():
     assert np.abs(y - plain).max() > 0.1
 
 
-def test_what_is_squared_or_no_graph_begins_as_it_is():
-    way = shape(functional={"integrand": "sqrt(1 + y'^2)"}, endpoints=["y(0) = 0", "y(3) = 1"])
+def test_what_is_no_graph_begins_as_it_is():
+    way = shape(
+        unknowns={"y": {}, "z": {}}, functional={"integrand": "sqrt(y'^2 + z'^2)"}, endpoints=["y(0) = 0", "y(3) = 1"]
+    )
     look = first_look(way)
     gauged = in_parametric_form(way, lambda: look.sizes, squared=True)
+    assert not gauged.graph
     assert at_constant_speed(gauged, look) is gauged
