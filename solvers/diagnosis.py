@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
-from solvers.checks.convexity import convex_curves
 from solvers.search.record import End, Pursuit
 from solvers.solution import Diagnosis, Finding
 
 KEPT = "The best curve so far is kept"
 NOTHING_KEPT = "No curve had been found by then"
 
+MOST_BROKEN = 3
+"""Most conditions that the sentence names with how far they are broken."""
 NAMED = 6
 """Most conditions of a conflict that the sentence names; the findings have all."""
 
@@ -34,16 +35,8 @@ def diagnose(pursuit: Pursuit) -> Diagnosis | None:
     if pursuit.end in (End.CONVERGED, End.SETTLED):
         return None
     findings = pursuit.findings
-    if pursuit.end is End.INFEASIBLE and pursuit.conflicts:
+    if pursuit.end in (End.INFEASIBLE, End.NOWHERE):
         sentence = _of_conflicts(pursuit)
-    elif pursuit.end is End.INFEASIBLE:
-        named = "; ".join(f"'{finding.label}'" for finding in findings[:3])
-        if convex_curves(pursuit.problem):
-            sentence = f"No curve satisfies all conditions together. The least that has to give: {named}."
-        else:
-            sentence = (f"No curve was found that satisfies all conditions together, from several starts; the "
-                        f"conditions are not convex, so that one elsewhere is not excluded. The least that has to give "
-                        f"near the best: {named}.")  # fmt: skip
     elif pursuit.end is End.UNDEFINED:
         first = findings[0] if findings else None
         place = "" if first is None or first.place is None else f" at {first.place:.6g}"
@@ -59,19 +52,32 @@ def diagnose(pursuit: Pursuit) -> Diagnosis | None:
 
 
 def _of_conflicts(pursuit: Pursuit) -> str:
-    """Which conditions cannot hold together, and what is known of that."""
+    """Which conditions cannot hold together, or were not found to, and what is known of that."""
+    proved = pursuit.end is End.INFEASIBLE
+    begin = "No curve satisfies" if proved else "No curve was found, from several starts, that satisfies"
     sets = [_listed(conflict) for conflict in pursuit.conflicts]
-    if convex_curves(pursuit.problem):
-        begin, proviso = "No curve satisfies", ""
-    else:
-        begin = "No curve was found, from several starts, that satisfies"
-        proviso = " The conditions are not convex, so that one elsewhere is not excluded."
-    sentence = f"{begin} {sets[0]}." + "".join(f" Nor {other}." for other in sets[1:])
+    sentence = f"{begin} {sets[0]}." if sets else f"{begin} all conditions together."
+    sentence += "".join(f" Nor {other}." for other in sets[1:])
     if any(len(conflict) > 1 for conflict in pursuit.conflicts):
         sentence += (
             " Without any one of them the others can be met; the amounts say how far each would have to give alone."
         )
-    return sentence + proviso
+    broken = "; ".join(_with_amount(pursuit, finding) for finding in pursuit.broken[:MOST_BROKEN])
+    if broken and not (proved and sets):
+        sentence += f" The least that has to give{'' if proved else ' near the best that was found'}: {broken}."
+    return sentence if proved else f"{sentence} That there is none is not proved; one elsewhere is not excluded."
+
+
+def _with_amount(pursuit: Pursuit, finding: Finding) -> str:
+    """A condition and how far it is broken, in its unit."""
+    problem = pursuit.problem
+    units = {condition.pointer: condition.unit for condition in problem.conditions}
+    units |= {f"/unknowns/{u.name}/within": u.unit for u in problem.unknowns}
+    units |= {f"/parameters/{p.name}/within": p.unit for p in problem.parameters}
+    unit = units.get(finding.pointer)
+    if finding.amount is None or unit is None:
+        return f"'{finding.label}'"
+    return f"'{finding.label}' by {finding.amount / unit.factor:.3g}{' ' if unit.text else ''}{unit.text}"
 
 
 def _listed(conflict: tuple[Finding, ...]) -> str:

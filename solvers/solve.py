@@ -73,7 +73,11 @@ from solvers.verdict import judge
 
 Array = NDArray[np.float64]
 
-EARLY = {End.INFEASIBLE: Verdict.INFEASIBLE, End.UNBOUNDED: Verdict.NO_OPTIMUM}
+EARLY = {
+    End.INFEASIBLE: Verdict.INFEASIBLE,
+    End.NOWHERE: Verdict.NOT_VERIFIED,
+    End.UNBOUNDED: Verdict.NO_OPTIMUM,
+}
 """Verdicts that need no curve."""
 
 LOST = (End.FAILED, End.UNDEFINED)
@@ -129,7 +133,7 @@ def _with_own_switches(problem: Problem, found: Solution, watch: Watch) -> Solut
     began, options = time.perf_counter(), problem.options
     left = options.time_limit - found.times.get("solve", 0.0)
     several = options.starts > 1 or problem.sweeps or problem.continuation or problem.observations
-    if found.verdict not in NO_OPTIMUM_FOUND or several or left <= 0:
+    if found.value is None or found.verdict not in NO_OPTIMUM_FOUND or several or left <= 0:
         return None
     cut = cut_at_switches(problem, found)
     if cut is None:

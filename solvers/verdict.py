@@ -29,6 +29,8 @@ def judge(seek: Seek, checks: Sequence[Check], end: End = End.CONVERGED) -> Verd
     """
     if end is End.INFEASIBLE:
         return Verdict.INFEASIBLE
+    if end is End.NOWHERE:
+        return Verdict.NOT_VERIFIED
     if end is End.UNBOUNDED:
         return Verdict.NO_OPTIMUM
     status = {check.name: check.status for check in checks}

@@ -22,7 +22,7 @@ _MEANINGS = {
     "optimum.",
     "best found": "A limit was reached before the search ended. This is the best curve until then; nothing is claimed "
     "about how much better one could be.",
-    "infeasible": "No curve was found that meets all conditions at once.",
+    "infeasible": "No curve meets all conditions at once: some of them contradict each other.",
     "no optimum": "As the mesh is refined the value runs away or the curve degenerates: as it is stated the problem "
     "has no optimum.",
 }
@@ -32,6 +32,10 @@ VERDICTS = tuple(_MEANINGS)
 
 _REASONS = {
     "infeasible": ("No curve meets all conditions", "Loosen or drop one of these conditions and solve again."),
+    "no curve found": (
+        "No curve was found that meets all conditions",
+        "Loosen or drop one of these conditions, or give a guess that comes near to a curve, and solve again.",
+    ),
     "undefined": ("A formula is not defined where the search begins", ""),
     "out of time": ("The time limit ended the search", ""),
     "stopped": ("Stopped before the end", "Edit the problem or solve it again as it is."),

@@ -7,11 +7,11 @@ from typing import Any
 
 import numpy as np
 
-from solvers.checks.convexity import convex_curves
 from solvers.minimise.ipopt import LEAST_SQUARES_MULTIPLIERS, Minimum, Outcome, Start
 from solvers.minimise.undefined import undefined_places
 from solvers.search.attempt import FIRST_INTERVALS, SOLVED, end_of, first_mesh, loose, make_program
 from solvers.search.conflict import VIOLATED, curve_of_least_violation, least_violation_of
+from solvers.search.contradiction import contradictory
 from solvers.search.effort import Minimiser
 from solvers.search.record import End, Pursuit
 from solvers.search.unbounded import in_growing_boxes
@@ -78,11 +78,9 @@ def begin(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Program, Minimum] | N
                 return begun
         if attempt == 0 and Outcome.INFEASIBLE in outcomes:  # so it is here
             begun = _after_least_violation(pursuit, minimise_)
-            conflict = pursuit.end is End.INFEASIBLE
-            if begun is not None or pursuit.end in (End.STOPPED, End.TIME):
+            conflict = pursuit.end is End.NOWHERE
+            if begun is not None or pursuit.end in (End.STOPPED, End.TIME, End.INFEASIBLE):
                 return begun
-            if conflict and convex_curves(pursuit.problem):
-                return None
     if set(outcomes) == {Outcome.UNDEFINED}:
         mesh = first_mesh(stretches)
         where = layout(compiled, mesh)
@@ -90,7 +88,7 @@ def begin(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Program, Minimum] | N
         pursuit.end, pursuit.findings = End.UNDEFINED, undefined_places(compiled, where, z)
         return None
     if conflict:
-        pursuit.end = End.INFEASIBLE
+        pursuit.end = End.NOWHERE
         return None
     return _after_least_violation(pursuit, minimise_)
 
@@ -123,7 +121,8 @@ def _after_least_violation(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Prog
         pursuit.end = end_of(least.minimum)
         return None
     if least.total > VIOLATED:
-        pursuit.end, pursuit.findings = End.INFEASIBLE, least.findings
+        pursuit.end = End.INFEASIBLE if contradictory(pursuit, minimise_) else End.NOWHERE
+        pursuit.findings = pursuit.broken = least.findings
         pursuit.nearest = curve_of_least_violation(program, least)
         return None
     minimum = minimise_(program, Start(least.z), STEADY)

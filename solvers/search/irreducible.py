@@ -41,8 +41,8 @@ DEAR = 1e3
 
 
 def name_conflicts(pursuit: Pursuit, watch: Watch | None, deadline: Deadline) -> None:
-    """Let the findings of a pursuit that is infeasible be its smallest conflicts, where there is time to find any."""
-    if pursuit.end is not End.INFEASIBLE or pursuit.nearest is None:
+    """Let the findings of a pursuit without any curve be its smallest conflicts, where there is time to find any."""
+    if pursuit.end not in (End.INFEASIBLE, End.NOWHERE) or pursuit.nearest is None:
         return
     pursuit.conflicts = conflicts(pursuit.nearest, Minimiser(pursuit, watch, deadline))
     if len(pursuit.conflicts) > 1:

@@ -24,7 +24,8 @@ class End(Enum):
     POINTS = "points limit"
     TIME = "out of time"
     STOPPED = "stopped"
-    INFEASIBLE = "infeasible"
+    INFEASIBLE = "infeasible"  # proved
+    NOWHERE = "no curve found"  # that satisfies all conditions
     UNBOUNDED = "unbounded"
     TORN = "degenerates"  # the curve tends to one that jumps
     AWAY = "runs away"  # the curve is the better the farther it goes
@@ -46,6 +47,7 @@ class Pursuit:
     last: tuple[Program, Minimum] | None = None
     first: Program | None = None  # the one whose sizes are those of the first guess
     findings: tuple[Finding, ...] = ()
+    broken: tuple[Finding, ...] = ()  # what that curve violates, worst first
     conflicts: tuple[tuple[Finding, ...], ...] = ()  # the smallest sets of conditions that no curve satisfies
     value_error: float = np.inf
     curve_error: float = np.inf

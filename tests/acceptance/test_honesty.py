@@ -4,6 +4,7 @@ Each has what is true of it: its value (None where there is none, or where it is
 say so.  Weaker words are no lie; they are listed where nothing better is owed.
 """
 
+import cmath
 import json
 import math
 from math import pi
@@ -46,6 +47,39 @@ TWO = {"unknowns": {"y": {}, "z": {}}, "endpoints": ["y(0) = 0", "y(1) = 1", "z(
 }
 
 
+def half_turns(x, v):
+    """Least time of x'' = -x + u, |u| <= 1, to rest at the origin, by the half turns of Bushaw (1958; from memory).
+
+    In z = x + i v a constant u turns clockwise about u.  Back from the origin: a last piece b <= pi about one limit,
+    k half turns about each in turn, and a first piece a <= pi about the next, with |z + s| = |2 k + 2 - exp(i b)|.
+    """
+    times = []
+    for k in range(9):
+        for s in (1, -1):
+            cosine = ((2 * k + 2) ** 2 + 1 - abs(complex(x, v) + s) ** 2) / (4 * k + 4)
+            if abs(cosine) <= 1:
+                b = math.acos(cosine)
+                a = cmath.phase((complex(x, v) + s) / (s * (2 * k + 2 - cmath.exp(1j * b)))) % (2 * pi)
+                times += [a + k * pi + b] if a <= pi else []
+    return min(times)
+
+
+def to_rest(dynamics, x, v, within, value, right=LEAST):
+    return {
+        "independent": {"name": "x", "from": 0, "to": "T"},
+        "parameters": {"T": {"within": within}},
+        "unknowns": {"y": {}, "v": {}, "u": {"within": [-1, 1]}},
+        "dynamics": ["y' = v", f"v' = {dynamics}"],
+        "endpoint": "T",
+        "endpoints": [f"y(0) = {x}", f"v(0) = {v}", "y(T) = 0", "v(T) = 0"],
+    }, value, right  # fmt: skip
+
+
+def oscillator(x, v, within, right=LEAST):
+    """Brought to rest from anywhere, however long it takes."""
+    return to_rest("-y + u", x, v, within, half_turns(x, v), right)
+
+
 def loaded_power(power, load):
     """min of the integral of |y'|^p - k y between zeros at 0 and 1, and its least value.
 
@@ -61,6 +95,14 @@ CASES = {
     "a power between one and two": loaded_power(1.5, 1),
     "under a larger load": loaded_power(1.5, 4),
     "a power near one": loaded_power(1.3, 1),
+    "many half turns": oscillator(6, 1, [0.1, 20]),
+    "within a wide range of times": oscillator(6, 1, [0.1, 40]),
+    "some half turns": oscillator(4, 1, [0.1, 40]),
+    "a first guess of little": oscillator(2, 1, [0.01, 40]),
+    "another": oscillator(2, 1, [0.1, 40]),
+    "five half turns": oscillator(10, 1, [0.1, 40]),
+    "a switch just at the start": oscillator(6, 0, [0.1, 40], LEAST | OPEN),
+    "a limit cycle left": to_rest("(1 - y^2)*v - y + u", 1, 1, [0.01, 40], None),
     "just before the conjugate point": (swings(1 - 1e-4), 0.0, LEAST),
     "just behind it": (swings(1 + 1e-4), None, NONE),
     "too near to tell": (swings(1 + 1e-9), None, NONE | OPEN),

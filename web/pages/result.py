@@ -116,6 +116,7 @@ def result_page(
     permalink = base_url.rstrip("/") + links.run(run_id)
     document = json.dumps(problem, ensure_ascii=False, indent=2)
     has_value = result.get("value") is not None
+    untold = verdict in ("", "infeasible") or (verdict == "not verified" and not has_value)  # the diagnosis says it all
     return ResultPage(
         title=str(problem.get("title") or "Untitled problem"),
         run_id=run_id,
@@ -123,7 +124,7 @@ def result_page(
         state_tone=display.tone(result.get("state")),
         verdict=verdict,
         verdict_tone=display.tone(verdict, seek),
-        meaning="" if result.get("diagnosis") and verdict in ("", "infeasible") else verdict_sentence(verdict, checks),
+        meaning="" if result.get("diagnosis") and untold else verdict_sentence(verdict, checks),
         value=_raised(display.with_error(result["value"], result.get("value_error"))) if has_value else Markup(),
         value_unit=display.unit(result.get("value_unit") or "") if has_value else "",
         value_about=_value_about(result, seek),

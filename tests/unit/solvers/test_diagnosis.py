@@ -23,12 +23,36 @@ def test_every_end_has_its_diagnosis_or_needs_none(end):
         assert found.sentence.endswith(".")
 
 
+def without_curve(end, *broken):
+    found = pursuit(end, *broken)
+    found.broken = broken
+    return found
+
+
 def test_conflicts_are_named():
     findings = tuple(Finding(f"condition {k}", f"/constraints/{k}", 1.0) for k in range(5))
-    found = diagnose(pursuit(End.INFEASIBLE, *findings))
-    assert "'condition 0'; 'condition 1'; 'condition 2'." in found.sentence
-    assert "condition 3" not in found.sentence
+    found = diagnose(without_curve(End.INFEASIBLE, *findings))
+    assert found.sentence.startswith("No curve satisfies all conditions together.")
+    assert found.sentence.endswith("give: 'condition 0'; 'condition 1'; 'condition 2'.")
     assert found.findings == findings
+
+
+def test_what_is_not_proved_is_not_excluded_and_the_least_violation_is_told_in_its_unit():
+    problem = stated(unknowns={"x": {"unit": "m"}, "u": {"unit": "m/s", "within": [-1, 1]}},
+                     independent={"name": "t", "unit": "s", "from": 0, "to": 1}, dynamics=["x' = u"],
+                     functional={"integrand": "u^2"}, endpoints=["x(0) = 0", "x(1) = 3"])  # fmt: skip
+    (condition,) = (c for c in problem.endpoints if c.label.startswith("x(1)"))
+    found = Pursuit(problem, compiled(problem), End.NOWHERE)
+    found.broken = (Finding(condition.label, condition.pointer, 2.0), Finding("no condition of the user", "", 1.0))
+    sentence = diagnose(found).sentence
+    assert sentence.startswith("No curve was found, from several starts, that satisfies all conditions together.")
+    assert "near the best that was found: 'x(1) = 3' by 2 m; 'no condition of the user'." in sentence
+    assert sentence.endswith("one elsewhere is not excluded.")
+
+
+@pytest.mark.parametrize("end", [End.INFEASIBLE, End.NOWHERE])
+def test_without_findings_no_sentence_announces_any(end):
+    assert ":" not in diagnose(pursuit(end)).sentence
 
 
 def test_the_smallest_conflicts_are_said_set_by_set():

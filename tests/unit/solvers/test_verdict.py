@@ -70,6 +70,7 @@ def test_a_check_that_is_missing_counts_as_failed(name):
 
 def test_early_ends():
     assert judge(Seek.MINIMUM, (), End.INFEASIBLE) is Verdict.INFEASIBLE
+    assert judge(Seek.MINIMUM, (), End.NOWHERE) is Verdict.NOT_VERIFIED
     assert judge(Seek.MINIMUM, (), End.UNBOUNDED) is Verdict.NO_OPTIMUM
     assert judge(Seek.MINIMUM, found(convexity=P, refinement=F), End.TORN) is Verdict.NO_OPTIMUM
     assert judge(Seek.MINIMUM, found(motion=F), End.TORN) is Verdict.NOT_VERIFIED
