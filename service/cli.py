@@ -19,6 +19,7 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from service.threads import ONE_THREAD
+from web.media_types import PARTS
 
 if TYPE_CHECKING:
     from service.complaints import Refused
@@ -89,7 +90,14 @@ def serve(host: str | None, port: int | None, data: Path | None, workers: int | 
 @click.option("--step", type=float, help="Step of the table in the unit of the independent variable.")
 @click.option("--derivatives", type=click.IntRange(0, 3), default=0, help="Derivatives in the table.")
 @click.option("--sigma", is_flag=True, help="In the table, one standard deviation from tolerances.")
-@click.option("--sweep", type=click.Path(path_type=Path, dir_okay=False), help="Write the sweep likewise.")
+@click.option(
+    "--part",
+    "parts",
+    type=(click.Choice(PARTS), click.Path(path_type=Path, dir_okay=False)),
+    multiple=True,
+    metavar="PART FILE",
+    help=f"Write a part of the result likewise, one of {', '.join(PARTS)}; may be given several times.",
+)
 def solve(
     file: str,
     as_json: bool,
@@ -98,17 +106,17 @@ def solve(
     step: float | None,
     derivatives: int,
     sigma: bool,
-    sweep: Path | None,
+    parts: tuple[tuple[str, Path], ...],
 ) -> None:
     """Solve the problem in FILE (- for standard input, or the name of a sample)."""
     body = _body(file)
     suffix = _suffix(table, rows, step)
-    sweep_suffix = _suffix(sweep, None, None)
+    suffixes = [_suffix(path, None, None) for _, path in parts]
     result = _solved(body)
     if table is not None:
         _write_table(result, table, suffix, rows=rows, step=step, derivatives=derivatives, sigma=sigma)
-    if sweep is not None:
-        _write_sweep(result, sweep, sweep_suffix)
+    for (part, path), its_suffix in zip(parts, suffixes, strict=True):
+        _write_part(result, part, path, its_suffix)
     if as_json:
         click.echo(json.dumps(result, ensure_ascii=False, allow_nan=False))
     else:
@@ -225,15 +233,15 @@ def _suffix(table: Path | None, rows: int | None, step: float | None) -> str:
     return suffix
 
 
-def _write_sweep(result: Mapping[str, Any], path: Path, suffix: str) -> None:
-    from web.tables import FILE_FORMATS, TableError, sweep_table
+def _write_part(result: Mapping[str, Any], part: str, path: Path, suffix: str) -> None:
+    from web.tables import FILE_FORMATS, TableError, part_table
 
     try:
-        path.write_bytes(FILE_FORMATS[suffix].write(sweep_table(result)))
+        path.write_bytes(FILE_FORMATS[suffix].write(part_table(result, part)))
     except TableError as error:
         click.echo(f"No table: {error.message} {error.hint}", err=True)
     else:
-        click.echo(f"Sweep written to {path}", err=True)
+        click.echo(f"{part.capitalize()} written to {path}", err=True)
 
 
 def _write_table(result: Mapping[str, Any], path: Path, suffix: str, **choice: Any) -> None:

@@ -125,10 +125,11 @@ _TYPES = (
         "The run ended without a curve, so there is no table of it. The result document says why.",
     ),
     ProblemType(
-        "no-sweep",
+        "no-part",
         409,
-        "The run has no sweep",
-        "The problem sweeps no constant, so there is no table of points. Give it the member sweep.",
+        "The result has no such part",
+        "The table asked for is of a part that this result does not have, such as the points of a sweep where no "
+        "constant is swept. The result document says what there is.",
     ),
     ProblemType(
         "too-large", 413, "The body is too large", "The detail names the limit in bytes. Nothing of the body was kept."

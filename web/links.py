@@ -80,15 +80,17 @@ def table(
     columns: str = "",
     derivatives: str = "",
     sigma: str = "",
+    extremal: str = "",
 ) -> str:
     """The table of a result as `csv`, `json`, `xlsx` or `npz`."""
     path = f"{api_run(run_id)}/table.{suffix}"
-    return _with_query(path, rows=rows, step=step, columns=columns, derivatives=derivatives, sigma=sigma)
+    return _with_query(path, rows=rows, step=step, columns=columns, derivatives=derivatives, sigma=sigma,
+                       extremal=extremal)  # fmt: skip
 
 
-def sweep(run_id: str, suffix: str) -> str:
-    """The points of a sweep as `csv`, `json`, `xlsx` or `npz`."""
-    return f"{api_run(run_id)}/sweep.{suffix}"
+def part(run_id: str, name: str, suffix: str) -> str:
+    """A part of a result (one of `web.tables.PARTS`) as `csv`, `json`, `xlsx` or `npz`."""
+    return f"{api_run(run_id)}/{name}.{suffix}"
 
 
 def observed(run_id: str, suffix: str, number: int = 1) -> str:

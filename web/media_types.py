@@ -1,4 +1,4 @@
-"""The media types of tables by file suffix: apart from what writes them, which is slow to load."""
+"""The tables that there are and their media types: apart from what makes and writes them, which is slow to load."""
 
 from collections.abc import Mapping
 
@@ -8,3 +8,8 @@ TABLES: Mapping[str, str] = {
     "xlsx": "application/vnd.openxmlformats-officedocument.spreadsheetml.sheet",
     "npz": "application/x-npz",
 }
+
+PARTS = (
+    "stretches", "costates", "checks", "prices", "slopes", "sweep", "continuation", "extremals", "fit", "meshes",
+)  # fmt: skip
+"""The parts of a result that have a table of their own, by their names in addresses and on the command line."""

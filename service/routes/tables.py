@@ -39,9 +39,17 @@ class Choice(BaseModel):
     columns: str | None = Field(None, description="columns with primes, separated by commas, such as x,x',a")
     derivatives: int = Field(0, description="derivatives of every unknown, 0 to 3, where no columns are named")
     sigma: bool = Field(False, description="beside every column one standard deviation from the constants' tolerances")
+    extremal: int | None = Field(
+        None, ge=1, description="number of one of several extremals, whose curve is wanted, counted from 1"
+    )
 
 
 TheChoice = Annotated[Choice, Query()]
+Suffix = Literal["csv", "json", "xlsx", "npz"]
+Part = Literal[
+    "stretches", "costates", "checks", "prices", "slopes", "sweep", "continuation", "extremals", "fit", "meshes"
+]
+"""Those of `web.tables.PARTS`, which is loaded with the first table."""
 
 router = APIRouter(prefix=links.API_RUNS, tags=["tables"], default_response_class=Response)
 _MEDIA_TYPES = {suffix: media_type.partition(";")[0] for suffix, media_type in TABLES.items()}
@@ -73,7 +81,7 @@ def read_table(
     request: Request,
     run: TheRun,
     services: TheServices,
-    suffix: Literal["csv", "json", "xlsx", "npz"],
+    suffix: Suffix,
     choice: TheChoice,
 ) -> Response:
     """At the nodes of the mesh, at `rows` places, or every `step`; the last row is exactly the end.
@@ -101,27 +109,6 @@ def negotiate_table(request: Request, run: TheRun, services: TheServices, choice
     return answer
 
 
-@router.get(
-    "/{id}/sweep.{suffix}",
-    summary="Read the points of a sweep as a table",
-    response_model=None,
-    responses={**_ANSWERS, **failures("no-sweep")},
-)
-def read_sweep(
-    request: Request, run: TheRun, services: TheServices, suffix: Literal["csv", "json", "xlsx", "npz"]
-) -> Response:
-    """One row for each point: its verdict, the constants, the value with its error, the parameters."""
-    from web.tables import FILE_FORMATS, TableError, sweep_table
-
-    try:
-        made = sweep_table(result_of(run, services.store))
-    except TableError as error:
-        raise Fault("no-sweep", f"{error.message} {error.hint}") from None
-    headers = {"content-disposition": f'attachment; filename="curvewright-{run.id[:8]}-sweep.{suffix}"'}
-    file = FILE_FORMATS[suffix]
-    return conditional.answer(request, file.write(made), file.media_type, headers=headers)
-
-
 class ListChoice(BaseModel):
     """Which list of observations."""
 
@@ -140,7 +127,7 @@ def read_observations(
     request: Request,
     run: TheRun,
     services: TheServices,
-    suffix: Literal["csv", "json", "xlsx", "npz"],
+    suffix: Suffix,
     choice: Annotated[ListChoice, Query()],
 ) -> Response:
     """Observed and fitted values, residuals, and standard deviations where they are known; one row for each point."""
@@ -158,10 +145,34 @@ def read_observations(
     return conditional.answer(request, file.write(made), file.media_type, headers=headers)
 
 
+@router.get(
+    "/{id}/{part}.{suffix}",
+    summary="Read a part of the result as a table",
+    response_model=None,
+    responses={**_ANSWERS, **failures("no-part")},
+)
+def read_part(request: Request, run: TheRun, services: TheServices, part: Part, suffix: Suffix) -> Response:
+    """One row for each stretch, check, price, slope, point or curve: texts first, then numbers.
+
+    `costates` are at the nodes of the mesh.
+    """
+    from web.tables import FILE_FORMATS, TableError, part_table
+
+    try:
+        made = part_table(result_of(run, services.store), part)
+    except TableError as error:
+        raise Fault("no-part", f"{error.message} {error.hint}") from None
+    headers = {"content-disposition": f'attachment; filename="curvewright-{run.id[:8]}-{part}.{suffix}"'}
+    file = FILE_FORMATS[suffix]
+    return conditional.answer(request, file.write(made), file.media_type, headers=headers)
+
+
 def _table(run: Run, services: Services, choice: Choice) -> Table:
     from web.tables import TableError, table
 
     result = result_of(run, services.store)
+    if choice.extremal is not None:
+        result = _of_extremal(result, choice.extremal)
     if not result["curve"]:
         raise Fault("no-curve", "This run ended without a curve; its result document says why.")
     columns = None
@@ -172,6 +183,17 @@ def _table(run: Run, services: Services, choice: Choice) -> Table:
                      sigma=choice.sigma)  # fmt: skip
     except TableError as error:
         raise _refused(error) from None
+
+
+def _of_extremal(result: dict[str, Any], number: int) -> dict[str, Any]:
+    """The result with one of its extremals in its place; raises `Fault`."""
+    from web.tables import TableError
+
+    found = result.get("extremals") or []
+    if number > len(found):
+        hint = f"They are numbered from 1 to {len(found)}." if found else "Ask for several `starts` in `solve`."
+        raise _refused(TableError(f"There is no extremal {number}.", hint, "bad-extremal"))
+    return {**result, "band": None, **found[number - 1]}
 
 
 def _refused(error: TableError) -> Fault:

@@ -40,7 +40,7 @@ def solved():
 def test_a_sweep_is_summed_up_and_written(tmp_path):
     document = LINE | {"constants": {"h": "2 m +/- 0.1 m"}, "endpoints": ["y(0) = 0", "y(3) = h"]}
     document["sweep"] = {"h": {"values": [1, 2, 4]}}
-    done = _run("solve", "-", "--sweep", tmp_path / "sweep.csv", stdin=json.dumps(document))
+    done = _run("solve", "-", "--part", "sweep", tmp_path / "sweep.csv", stdin=json.dumps(document))
     assert done.returncode == 0, done.stderr
     assert "Sweep of h: 3 points, 3 " in done.stdout
     assert re.search(r"h = 4\s?m +5\.333333", done.stdout)

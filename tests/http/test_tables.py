@@ -161,10 +161,48 @@ def test_tolerances_stand_beside_the_columns_and_folds_in_the_result(client, pos
     assert result["continuation"]["end"] == "The branch reaches the value asked for."
 
 
+def test_every_part_of_a_result_is_handed_over(client, line, post):
+    page = client.get(line["links"]["page"], headers={"accept": "text/html"}).text
+    for part in ("checks", "costates", "prices", "meshes"):
+        address = f"{line['links']['self']}/{part}.csv"
+        assert address in page
+        heading, *rows = csv.reader(io.StringIO(client.get(address).text))
+        assert rows and all(len(row) == len(heading) for row in rows)
+    assert client.get(f"{line['links']['self']}/nothing.csv").status_code == 404
+
+
+def test_what_controls_do_from_switch_to_switch_is_handed_over(client, post):
+    document = {
+        "format": 1,
+        "independent": {"name": "t", "unit": "h", "from": 0, "to": 10},
+        "constants": {"r": "1 1/h"},
+        "unknowns": {"x": {}, "u": {"within": [0, 1], "unit": "1/h"}},
+        "dynamics": ["x' = r*x*(1 - x) - u"],
+        "functional": {"seek": "maximum", "integrand": "u"},
+        "endpoints": ["x(0) = 0.1", "x(10) = 0.5"],
+    }  # logistic growth reaches 1/2 at t = ln 9
+    run = post(document, prefer="wait=60").json()
+    told = client.get(run["links"]["result"]).json()["stretches"]
+    assert [(one["of"], one["course"]) for one in told] == [("u", "at its lower limit"), ("u", "singular")]
+    assert told[0]["to"] == told[1]["from"] == pytest.approx(np.log(9), rel=1e-7)
+    heading, *rows = csv.reader(io.StringIO(client.get(f"{run['links']['self']}/stretches.csv").text))
+    assert heading == ["of", "arc", "course", "from [h]", "to [h]"] and rows[1][2] == "singular"
+    page = client.get(run["links"]["page"], headers={"accept": "text/html"}).text
+    assert "From switch to switch" in page and "u runs singular from t = 2.1972 to 10 h." in page
+
+
+def test_the_curve_of_an_extremal_is_handed_over(client, line, post):
+    run = post({**LINE, "solve": {"starts": 2}}, prefer="wait=60").json()
+    _, rows = _rows(client.get(f"{run['links']['self']}/table.csv?rows=4&extremal=1").text)
+    assert rows[:, 1] == pytest.approx(SLOPE * rows[:, 0], abs=1e-8)
+    refused = client.get(f"{line['links']['self']}/table.csv?extremal=1")
+    assert refused.status_code == 422 and refused.json()["complaints"][0]["code"] == "bad-extremal"
+
+
 def test_a_run_without_a_sweep_says_so(client, line):
     answer = client.get(f"{line['links']['self']}/sweep.csv")
     assert answer.status_code == 409
-    assert answer.json()["type"] == "/problems/no-sweep"
+    assert answer.json()["type"] == "/problems/no-part"
 
 
 def test_residuals_of_a_fit_come_as_a_table(client, post):

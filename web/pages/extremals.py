@@ -8,7 +8,7 @@ from typing import Any
 
 from markupsafe import Markup
 
-from web import display
+from web import display, links
 from web.figures.series import series
 from web.thumbnails import thumbnail
 from web.trajectory import read_trajectory
@@ -18,9 +18,10 @@ PICTURE_POINTS = 160
 
 @dataclass(frozen=True, slots=True)
 class Found:
-    """One distinct curve: its picture, value and verdict, and the starts that led there."""
+    """One distinct curve: its picture, the address of its table, value and verdict, and the starts that led there."""
 
     picture: Markup
+    table: str
     value: str
     verdict: str
     tone: str
@@ -29,13 +30,14 @@ class Found:
     starts: str
 
 
-def found_by_starts(result: Mapping[str, Any]) -> tuple[Found, ...]:
+def found_by_starts(result: Mapping[str, Any], run_id: str) -> tuple[Found, ...]:
     """The extremals of a result document, in its order: the best first."""
     unit = str(result.get("value_unit") or "")
     seek = str(((result.get("problem") or {}).get("functional") or {}).get("seek") or "")
     return tuple(
         Found(
             picture=_picture(extremal),
+            table=links.table(run_id, "csv", extremal=str(number)) if extremal["curve"] else "",
             value=display.joined(display.with_error(extremal["value"], extremal["value_error"]), unit),
             verdict=extremal["verdict"] or "no verdict",
             tone=display.tone(extremal["verdict"], seek),
@@ -46,7 +48,7 @@ def found_by_starts(result: Mapping[str, Any]) -> tuple[Found, ...]:
             count=len(extremal["starts"]),
             starts="; ".join(extremal["starts"]),
         )
-        for extremal in result.get("extremals") or ()
+        for number, extremal in enumerate(result.get("extremals") or (), start=1)
     )
 
 

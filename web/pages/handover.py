@@ -55,15 +55,18 @@ def preview_of(result: Mapping[str, Any], run_id: str, choice: Choice) -> Previe
     shown = _without_dust(made.rows)
     cells = [tuple(display.number(value, 8) for value in row) for row in shown[:PREVIEW_ROWS].tolist()]
     last = tuple(display.number(value, 8) for value in shown[-1].tolist())
-    if made.arcs:
-        cells = [(arc, *row) for arc, row in zip(made.arcs, cells, strict=False)]
-        last = (made.arcs[-1], *last)
+    texts = made.text_rows
+    cells = [(*before, *row) for before, row in zip(texts, cells, strict=False)]
+    last = (*texts[-1], *last)
     return Preview(
         choice=choice,
-        headings=(*(("arc",) if made.arcs else ()), *(bracketed(c.name, display.unit(c.unit)) for c in made.columns)),
+        headings=(
+            *(text.name for text in made.texts),
+            *(bracketed(c.name, display.unit(c.unit)) for c in made.columns),
+        ),
         rows=tuple(cells),
         last=last if len(made.rows) > PREVIEW_ROWS else (),
-        between=(*(("",) if made.arcs else ()), *_missed(made)),
+        between=(*("" for _ in made.texts), *_missed(made)),
         total=f"{len(made.rows):,}",
         error=error,
         files=tuple((file.name, links.table(run_id, suffix, **query)) for suffix, file in FILE_FORMATS.items()),

@@ -34,7 +34,7 @@ from web.pages.page import Page, told
 from web.pages.reading import Reading, reading_view, understood
 from web.pages.sweep import Sweep, sweep_of
 from web.plotly_assets import GLOBAL_SHEET, SCRIPT, placeholder_ids
-from web.tables import read_choice
+from web.tables import FILE_FORMATS, PARTS, read_choice
 from web.verdicts import tally, verdict_sentence
 
 EXPONENT_SIGNS = "⁰¹²³⁴⁵⁶⁷⁸⁹⁻"
@@ -74,9 +74,11 @@ class ResultPage(Page):
     extremal_figures: tuple[Figure, ...] = told("These curves over each other.")
     table_figures: tuple[Figure, ...] = told("Measured tables with the curves through their points.")
     further_figures: tuple[Figure, ...] = told("Derivatives, multipliers, mesh and error history.")
+    costates: bool = told("Whether there are costates or multipliers along the curve.")
     plotly: str = told("Address of the plotting script; empty where there is no figure.")
     plotly_sheet: str = told("Id of the style sheet link that the plotting script writes its rules to.")
     plotly_placeholders: tuple[str, ...] = told("Ids of elements that must be there for the plotting script.")
+    parts: Mapping[str, Pairs] = told("Format and address of the tables of each part that the result may have.")
     checks: tuple[Check, ...] = told("All checks.")
     checks_tally: str = told("How many passed, failed, do not apply.")
     curve_error: str = told("The relative error of the curve; empty where it is not known.")
@@ -112,7 +114,7 @@ def result_page(
     seek = str((problem.get("functional") or {"seek": "minimum"}).get("seek") or "")
     drawn = figures(result)
     run_id = str(result.get("id") or "")
-    sweep, branch = sweep_of(result, run_id), branch_figure(result)
+    sweep, branch = sweep_of(result), branch_figure(result)
     permalink = base_url.rstrip("/") + links.run(run_id)
     document = json.dumps(problem, ensure_ascii=False, indent=2)
     has_value = result.get("value") is not None
@@ -135,13 +137,18 @@ def result_page(
         stretches=stretches_of(result),
         fitted=fit_view(result, run_id),
         fitted_figures=tuple(figure for figure in drawn if figure.key.startswith(FITTED_FIGURES)),
-        extremals=found_by_starts(result),
+        extremals=found_by_starts(result, run_id),
         extremal_figures=tuple(figure for figure in drawn if figure.key.startswith(EXTREMAL_FIGURES)),
         table_figures=tuple(figure for figure in drawn if figure.key.startswith(TABLE_FIGURES)),
         further_figures=tuple(figure for figure in drawn if not figure.key.startswith(PLACED)),
+        costates=bool(result.get("curve") and ((result.get("multipliers") or {}).get("costates") or {}).get("arcs")),
         plotly=links.static(SCRIPT) if drawn or sweep or branch else "",
         plotly_sheet=GLOBAL_SHEET,
         plotly_placeholders=placeholder_ids() if drawn or sweep or branch else (),
+        parts={
+            part: tuple((file.name, links.part(run_id, part, suffix)) for suffix, file in FILE_FORMATS.items())
+            for part in PARTS
+        },
         checks=tuple(check_of(check, result) for check in checks),
         checks_tally=tally(checks),
         curve_error=display.number((result.get("curve") or {}).get("error"), 2) if result.get("curve") else "",

@@ -7,15 +7,12 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
-from web import display, links
+from web import display
 from web.figures import Figure, sweep_figures
-from web.tables import FILE_FORMATS
 from web.tables.sweep import NONE
 from web.unit_text import bracketed
 
 MOST_ROWS = 25
-
-Pairs = tuple[tuple[str, str], ...]
 
 
 @dataclass(frozen=True, slots=True)
@@ -37,10 +34,9 @@ class Sweep:
     headings: tuple[str, ...]
     rows: tuple[Row, ...]
     shown: str
-    files: Pairs
 
 
-def sweep_of(result: Mapping[str, Any], run_id: str) -> Sweep | None:
+def sweep_of(result: Mapping[str, Any]) -> Sweep | None:
     """None where nothing was swept."""
     sweep = result.get("sweep")
     if not sweep:
@@ -60,7 +56,6 @@ def sweep_of(result: Mapping[str, Any], run_id: str) -> Sweep | None:
         ),
         rows=tuple(_row(points[index], sweep["parameters"]) for index in chosen),
         shown=f"{len(chosen)} of {len(points)} points" if len(chosen) < len(points) else "All points",
-        files=tuple((file.name, links.sweep(run_id, suffix)) for suffix, file in FILE_FORMATS.items()),
     )
 
 

@@ -10,21 +10,22 @@ from web.tables.csv import to_csv, to_csvw, to_json
 from web.tables.error import TableError
 from web.tables.npz import to_npz
 from web.tables.observed import observed_table
+from web.tables.parts import PARTS, part_table
 from web.tables.places import MOST_ROWS
 from web.tables.sampling import Table, table
-from web.tables.sweep import sweep_table
 
 __all__ = [
     "FILE_FORMATS",
     "MOST_ROWS",
+    "PARTS",
     "Choice",
     "Column",
     "FileFormat",
     "Table",
     "TableError",
     "observed_table",
+    "part_table",
     "read_choice",
-    "sweep_table",
     "table",
     "to_csvw",
 ]

@@ -42,6 +42,16 @@ class Column:
         return bracketed(self.name, self.unit)
 
 
+@dataclass(frozen=True, slots=True)
+class TextColumn:
+    """A column of texts, before those of numbers; `member` is what the list of its cells is called in JSON and NPZ."""
+
+    name: str
+    member: str
+    meaning: str
+    cells: tuple[str, ...]
+
+
 def wanted_columns(trajectory: Trajectory, columns: Sequence[str] | None, derivatives: int) -> list[Wanted]:
     """The columns after the first, as names with the number of their primes; raises TableError."""
     if not 0 <= derivatives <= HIGHEST_DERIVATIVE:

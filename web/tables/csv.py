@@ -25,9 +25,7 @@ def to_csv(table: Table) -> bytes:
     writer = csv.writer(text, lineterminator="\r\n")
     writer.writerow([text_cell(heading) for heading in table.headings])
     rows = ([_number(value) for value in row] for row in table.rows.tolist())
-    if table.arcs:
-        rows = ([text_cell(arc), *row] for arc, row in zip(table.arcs, rows, strict=True))
-    writer.writerows(rows)
+    writer.writerows([*map(text_cell, texts), *row] for texts, row in zip(table.text_rows, rows, strict=True))
     return text.getvalue().encode()
 
 
@@ -38,6 +36,10 @@ def to_csvw(table: Table, address: str) -> dict[str, Any]:
     between the rows miss the curve.
     """
     columns: list[dict[str, Any]] = [
+        {"name": text.name, "titles": text.name, "dc:description": text.meaning, "datatype": "string"}
+        for text in table.texts
+    ]
+    columns += [
         {
             "name": f"column_{number}",
             "titles": column.heading,
@@ -47,10 +49,6 @@ def to_csvw(table: Table, address: str) -> dict[str, Any]:
         }
         for number, column in enumerate(table.columns, start=1)
     ]
-    if table.arcs:
-        meaning = f"{table.label} of the row"
-        name = {"name": table.label, "titles": table.label, "dc:description": meaning, "datatype": "string"}
-        columns.insert(0, name)
     return {
         "@context": ["http://www.w3.org/ns/csvw", {"@language": "en"}],
         "url": address,
@@ -70,8 +68,7 @@ def to_json(table: Table) -> bytes:
         "columns": [asdict(column) for column in table.columns],
         "rows": [[value if math.isfinite(value) else None for value in row] for row in table.rows.tolist()],
     }
-    if table.arcs:
-        document[f"{table.label}s"] = list(table.arcs)
+    document |= {text.member: list(text.cells) for text in table.texts}
     return json.dumps(document, ensure_ascii=False, allow_nan=False, separators=(",", ":")).encode()
 
 

@@ -20,7 +20,7 @@ def to_npz(table: Table) -> bytes:
         meanings=np.array([column.meaning for column in table.columns]),
         between=np.array([column.between for column in table.columns]),
         rows=table.rows,
-        **{f"{table.label}s": np.array(table.arcs, dtype=str)},
+        **{text.member: np.array(text.cells, dtype=str) for text in table.texts},
         record=np.array(table.record, dtype=str).reshape(-1, 2),
         title=np.array(table.title),
         caution=np.array(table.caution),

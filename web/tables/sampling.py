@@ -10,10 +10,10 @@ import numpy as np
 
 from solvers.curve import Array
 from web.caution import CAUTION
-from web.tables.columns import Column, described, wanted_columns
+from web.tables.columns import Column, TextColumn, Wanted, described, wanted_columns
 from web.tables.error import TableError
 from web.tables.places import row_places
-from web.trajectory import band, read_changes, read_trajectory
+from web.trajectory import Arc, Trajectory, band, read_changes, read_costates, read_trajectory
 from web.unit_text import bracketed
 
 MOST_CELLS = 1_000_000
@@ -23,23 +23,27 @@ MOST_CELLS = 1_000_000
 class Table:
     """Numbers with their columns; `rows` has the shape (rows, columns), NaN where an arc lacks a function.
 
-    `arcs` names the arc of each row, or is empty where there is only one arc.  `record` says where the numbers come
-    from, in pairs of heading and text.  `label` is what `arcs` are called where the rows carry another word.
+    `texts` are columns before those of numbers, such as the arc of each row where there are several.  `record` says
+    where the numbers come from, in pairs of heading and text.
     """
 
     title: str
     columns: tuple[Column, ...]
     rows: Array
-    arcs: tuple[str, ...] = ()
+    texts: tuple[TextColumn, ...] = ()
     record: tuple[tuple[str, str], ...] = ()
     caution: str = CAUTION
-    label: str = "arc"
 
     @property
     def headings(self) -> tuple[str, ...]:
-        """What stands above the columns, `arc` first where there are several."""
-        numbers = tuple(column.heading for column in self.columns)
-        return (self.label, *numbers) if self.arcs else numbers
+        """What stands above the columns."""
+        return (*(column.name for column in self.texts), *(column.heading for column in self.columns))
+
+    @property
+    def text_rows(self) -> list[tuple[str, ...]]:
+        """The texts of each row."""
+        cells = [column.cells for column in self.texts]
+        return list(zip(*cells, strict=True)) if cells else [()] * len(self.rows)
 
 
 def table(
@@ -74,19 +78,43 @@ def table(
             "Ask for fewer rows, a longer step or fewer columns.",
             "too-many-rows",
         )
+    return _sampled(result, trajectory, chosen, places, sigma)
+
+
+def costate_table(result: Mapping[str, Any]) -> Table:
+    """The costates, and the multipliers of pointwise constraints that bind, at the nodes of the mesh.
+
+    Raises `TableError`.
+    """
+    trajectory = read_costates(result)
+    if trajectory is None:
+        raise TableError("This result has no costates.", "Only a result with a curve has them.", "no-part")
+    chosen = [(name, 0) for name in trajectory.stored]
+    return _sampled(result, trajectory, chosen, row_places(trajectory, None, None), False)
+
+
+def _sampled(
+    result: Mapping[str, Any],
+    trajectory: Trajectory,
+    chosen: list[Wanted],
+    places: list[tuple[Arc, Array]],
+    sigma: bool,
+) -> Table:
+    """The chosen functions at places of each arc."""
     numbers = [
         (arc, np.column_stack([some, *(arc.evaluate(name, order, some) for name, order in chosen)]))
         for arc, some in places
     ]
     columns_ = described(trajectory, chosen, numbers, (result.get("problem") or {}).get("unknowns") or {})
     whole = np.concatenate([some for _, some in numbers])
+    arcs = tuple(arc.name for arc, some in places for _ in some)
     if sigma:
         columns_, whole = _with_sigma(result, chosen, columns_, whole)
     return Table(
         title=str((result.get("problem") or {}).get("title") or "Curve"),
         columns=columns_,
         rows=whole,
-        arcs=tuple(arc.name for arc, some in places for _ in some) if len(trajectory.arcs) > 1 else (),
+        texts=(TextColumn("arc", "arcs", "arc of the row", arcs),) if len(trajectory.arcs) > 1 else (),
         record=record_of(result),
     )
 

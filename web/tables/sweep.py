@@ -7,7 +7,7 @@ from typing import Any
 
 import numpy as np
 
-from web.tables.columns import Column
+from web.tables.columns import Column, TextColumn
 from web.tables.error import TableError
 from web.tables.sampling import Table, record_of
 
@@ -19,7 +19,7 @@ def sweep_table(result: Mapping[str, Any]) -> Table:
     """One row for each point, NaN where it has no number.  Raises `TableError` where the result has no sweep."""
     sweep = result.get("sweep")
     if not sweep:
-        raise TableError("This result has no sweep.", "Only a problem with `sweep` has this table.", "no-sweep")
+        raise TableError("This result has no sweep.", "Only a problem with `sweep` has this table.", "no-part")
     points, unit = sweep["points"], result.get("value_unit") or ""
     parameters = sweep["parameters"]
     columns = (
@@ -36,7 +36,7 @@ def sweep_table(result: Mapping[str, Any]) -> Table:
         title=str((result.get("problem") or {}).get("title") or "Sweep"),
         columns=columns,
         rows=np.array(rows, dtype=float),
-        arcs=tuple(point["verdict"] or NONE for point in points),
+        texts=(TextColumn("verdict", "verdicts", "verdict on the point",
+                          tuple(point["verdict"] or NONE for point in points)),),
         record=tuple(line for line in record_of(result) if line[0] in ("run", "problem hash", "versions")),
-        label="verdict",
-    )
+    )  # fmt: skip

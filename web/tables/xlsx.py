@@ -40,11 +40,10 @@ def _write_numbers(sheet: Worksheet, table: Table, bold: xlsxwriter.format.Forma
     sheet.set_column(0, len(table.headings) - 1, 18)
     for number, heading in enumerate(table.headings):
         sheet.write_string(0, number, heading, bold)
-    first = 1 if table.arcs else 0
-    for row, values in enumerate(table.rows.tolist(), start=1):
-        if table.arcs:
-            sheet.write_string(row, 0, table.arcs[row - 1])
-        for number, value in enumerate(values, start=first):
+    for row, (texts, values) in enumerate(zip(table.text_rows, table.rows.tolist(), strict=True), start=1):
+        for number, text in enumerate(texts):
+            sheet.write_string(row, number, text)
+        for number, value in enumerate(values, start=len(texts)):
             if math.isfinite(value):
                 sheet.write_number(row, number, value)
 

@@ -12,7 +12,7 @@ from web.figures.sweep import sweep_plots
 from web.pages.result import result_page
 from web.pages.sweep import sweep_of
 from web.render import render
-from web.tables import FILE_FORMATS, TableError, sweep_table, to_csvw
+from web.tables import FILE_FORMATS, TableError, part_table, to_csvw
 
 
 def point(at, value, verdict="local minimum", **members):
@@ -49,23 +49,23 @@ def grid(swept):
 
 
 def test_the_table_has_a_row_for_every_point(swept):
-    made = sweep_table(swept)
+    made = part_table(swept, "sweep")
     assert made.headings == ("verdict", "l [m]", "value [m^2]", "value error [m^2]", "T [s]")
-    assert made.arcs == ("local minimum", "not verified", "no result")
+    assert made.texts[0].cells == ("local minimum", "not verified", "no result")
     np.testing.assert_array_equal(made.rows[:, :2], [[4.0, 6.1], [4.2, 5.8], [4.4, np.nan]])
 
 
 def test_every_format_says_the_same(swept):
-    made = sweep_table(swept)
+    made = part_table(swept, "sweep")
     lines = list(csv.reader(io.StringIO(FILE_FORMATS["csv"].write(made).decode())))
     assert lines[0] == list(made.headings)
     assert lines[1][:3] == ["local minimum", "4.0", "6.1"]
     assert lines[3] == ["no result", "4.4", "", "", ""]
     document = json.loads(FILE_FORMATS["json"].write(made))
-    assert document["verdicts"] == list(made.arcs)
+    assert document["verdicts"] == list(made.texts[0].cells)
     assert document["rows"][2] == [4.4, None, None, None]
     archive = np.load(io.BytesIO(FILE_FORMATS["npz"].write(made)))
-    assert archive["verdicts"].tolist() == list(made.arcs)
+    assert archive["verdicts"].tolist() == list(made.texts[0].cells)
     np.testing.assert_array_equal(archive["rows"], made.rows)
     assert FILE_FORMATS["xlsx"].write(made)[:2] == b"PK"
     assert to_csvw(made, "sweep.csv")["tableSchema"]["columns"][0]["name"] == "verdict"
@@ -73,9 +73,9 @@ def test_every_format_says_the_same(swept):
 
 def test_a_result_without_a_sweep_has_no_such_table(hose):
     with pytest.raises(TableError, match="no sweep"):
-        sweep_table(hose)
+        part_table(hose, "sweep")
     assert sweep_plots(hose) == ()
-    assert sweep_of(hose, "run") is None
+    assert sweep_of(hose) is None
 
 
 def test_the_value_is_drawn_over_the_constant_and_what_is_missing_lifts_the_pen(swept):
@@ -107,7 +107,7 @@ def test_of_many_points_the_page_shows_some(swept):
     values = np.linspace(0, 1, 400).tolist()
     swept["sweep"]["constants"][0]["values"] = values
     swept["sweep"]["points"] = [point([value], value) for value in values]
-    shown = sweep_of(swept, "run")
+    shown = sweep_of(swept)
     assert len(shown.rows) == 25
     assert shown.shown == "25 of 400 points"
     assert (shown.rows[0].cells[0], shown.rows[-1].cells[0]) == ("0", "1")

@@ -24,8 +24,8 @@ def test_csv_reads_back_the_same_numbers(found):
     assert text.count("\r\n") == len(found.rows) + 1 and text.replace("\r\n", "").find("\n") == -1
     heading, *rows = csv.reader(io.StringIO(text, newline=""))
     assert tuple(heading) == found.headings
-    if found.arcs:
-        assert tuple(row.pop(0) for row in rows) == found.arcs
+    for text in found.texts:
+        assert tuple(row.pop(0) for row in rows) == text.cells
     numbers = np.array([[float(cell) if cell else np.nan for cell in row] for row in rows])
     np.testing.assert_array_equal(numbers, found.rows)
 
@@ -42,7 +42,7 @@ def test_xlsx_reads_back_the_same_numbers(found):
     book = openpyxl.load_workbook(io.BytesIO(FILE_FORMATS["xlsx"].write(found)))
     heading, *rows = book["Curve"].iter_rows(values_only=True)
     assert heading == found.headings
-    first = 1 if found.arcs else 0
+    first = len(found.texts)
     numbers = np.array([[np.nan if cell is None else cell for cell in row[first:]] for row in rows], dtype=float)
     np.testing.assert_array_equal(numbers, found.rows)
     record = {row[0]: row[1] for row in book["Provenance"].iter_rows(values_only=True)}
@@ -55,14 +55,15 @@ def test_npz_reads_back_the_same_numbers_without_pickle(found):
         np.testing.assert_array_equal(archive["rows"], found.rows)
         assert archive["names"].tolist() == [column.name for column in found.columns]
         assert archive["units"].tolist() == [column.unit for column in found.columns]
-        assert archive["arcs"].tolist() == list(found.arcs)
+        assert all(archive[text.member].tolist() == list(text.cells) for text in found.texts)
         assert str(archive["caution"]) == found.caution
 
 
 @pytest.mark.parametrize("start", ["=", "+", "-", "@", "\t"])
 def test_no_text_cell_starts_a_formula(vehicle, start):
     found = table(vehicle, rows=3)
-    hostile = replace(found, arcs=(start + 'HYPERLINK("x")', "burn", "coast"))
+    (arc,) = found.texts
+    hostile = replace(found, texts=(replace(arc, cells=(start + 'HYPERLINK("x")', "burn", "coast")),))
     rows = list(csv.reader(io.StringIO(FILE_FORMATS["csv"].write(hostile).decode(), newline="")))
     assert rows[1][0] == "'" + start + 'HYPERLINK("x")'
     book = openpyxl.load_workbook(io.BytesIO(FILE_FORMATS["xlsx"].write(hostile)))

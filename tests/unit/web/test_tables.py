@@ -99,11 +99,11 @@ def test_the_nodes_determine_the_polynomials(hose):
 
 def test_node_rows_show_both_sides_of_a_junction_and_even_rows_one(vehicle):
     found = table(vehicle)
-    at_junction = [(arc, row[2]) for arc, row in zip(found.arcs, found.rows, strict=True) if row[0] == 2.0]
+    at_junction = [(arc, row[2]) for arc, row in zip(found.texts[0].cells, found.rows, strict=True) if row[0] == 2.0]
     assert at_junction == [("burn", pytest.approx(38)), ("coast", pytest.approx(34))]
     even = table(vehicle, step=1.0)
     assert even.rows[:, 0].tolist() == [0, 1, 2, 3, 4, 5]
-    assert even.arcs == ("burn",) * 3 + ("coast",) * 3
+    assert even.texts[0].cells == ("burn",) * 3 + ("coast",) * 3
     assert even.headings == ("arc", "t [s]", "h [m]", "m [kg]", "F [N]")
     assert np.isnan(even.rows[3:, 3]).all() and not np.isnan(even.rows[:3]).any()
 

@@ -25,6 +25,8 @@ def used(name):
     source = (TEMPLATES / name).read_text(encoding="utf-8")
     tree = environment().parse(source)
     set_here = set(re.findall(r"{%-?\s*(?:set|for)\s+(\w+)", source))
+    for given in re.findall(r"{%-?\s*with\s(.*?)%}", source):
+        set_here |= set(re.findall(r"(\w+)\s*=[^=]", given))
     own = meta.find_undeclared_variables(tree) - set_here
     for part in meta.find_referenced_templates(tree):
         own |= used(part) - set_here
