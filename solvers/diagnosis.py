@@ -38,17 +38,20 @@ def diagnose(pursuit: Pursuit) -> Diagnosis | None:
     if pursuit.end in (End.INFEASIBLE, End.NOWHERE):
         sentence = _of_conflicts(pursuit)
     elif pursuit.end is End.UNDEFINED:
-        first = findings[0] if findings else None
-        place = "" if first is None or first.place is None else f" at {first.place:.6g}"
-        named = "a formula" if first is None else f"'{first.label}'{place} ({first.note})"
-        sentence = (
-            f"A formula has no value on any of the default guesses: {named}. A guess or a bound that avoids it helps."
-        )
+        named = "".join(f": {_undefined(finding)}" for finding in findings[:1])
+        sentence = f"A formula has no value, or no derivative, on any of the default guesses{named}."
+        sentence += " A guess or a bound that avoids it helps."
     else:
         sentence = _SENTENCES[pursuit.end]
         if not pursuit.solved:
             sentence = sentence.replace(KEPT, NOTHING_KEPT)
     return Diagnosis(pursuit.end.value, sentence, findings)
+
+
+def _undefined(finding: Finding) -> str:
+    """What has no value or no derivative, and where."""
+    place = "" if finding.place is None else f" at {finding.place:.6g}"
+    return f"'{finding.label}'{place} ({finding.note})"
 
 
 def _of_conflicts(pursuit: Pursuit) -> str:

@@ -36,7 +36,7 @@ _REASONS = {
         "No curve was found that meets all conditions",
         "Loosen or drop one of these conditions, or give a guess that comes near to a curve, and solve again.",
     ),
-    "undefined": ("A formula is not defined where the search begins", ""),
+    "undefined": ("A formula has no value or no derivative where the search begins", ""),
     "out of time": ("The time limit ended the search", ""),
     "stopped": ("Stopped before the end", "Edit the problem or solve it again as it is."),
     "unbounded": ("The value runs away", ""),

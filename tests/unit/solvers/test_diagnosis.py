@@ -50,7 +50,7 @@ def test_what_is_not_proved_is_not_excluded_and_the_least_violation_is_told_in_i
     assert sentence.endswith("one elsewhere is not excluded.")
 
 
-@pytest.mark.parametrize("end", [End.INFEASIBLE, End.NOWHERE])
+@pytest.mark.parametrize("end", [End.INFEASIBLE, End.NOWHERE, End.UNDEFINED])
 def test_without_findings_no_sentence_announces_any(end):
     assert ":" not in diagnose(pursuit(end)).sentence
 

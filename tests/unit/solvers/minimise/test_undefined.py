@@ -66,3 +66,27 @@ def test_a_sound_problem_has_none():
 def test_no_warning_leaves_the_search():
     with np.errstate(all="raise"):
         assert line("y'^2 + log(y)")
+
+
+FLAT = {"functional": {"integrand": "(y'^2)^0.75 - y"}, "endpoints": ["y(0) = 0", "y(3) = 0"]}
+
+
+def test_what_has_a_value_but_no_derivative_is_found():
+    """(y'^2)^0.75 is |y'|^1.5, told so that its slope is an infinite number times zero where y' is zero."""
+    (found,) = findings(shape(**FLAT))
+    assert found.label == "(y'^2)^0.75"
+    assert found.pointer == "/functional/integrand"
+    assert found.note == "no derivative, with y'^2 = 0"
+
+
+def test_a_second_derivative_counts_too():
+    (found,) = findings(shape(**FLAT | {"functional": {"integrand": "y'^2 + sqrt(y)^3*(1 + x)^p + x^1.5"}},
+                              parameters={"p": {}}))  # fmt: skip
+    assert found.label == "sqrt(y)"
+    (found,) = findings(shape(**FLAT | {"functional": {"integrand": "y'^2 + (x*y)^1.5"}}))
+    assert found.label == "(x*y)^1.5"
+
+
+@pytest.mark.parametrize("integrand", ["y'^2 + y^3/2 + abs(y)", "y'^2 + hypot(y, 1) + max(y, x)", "y'^2 + c^y + y^c"])
+def test_what_can_be_differentiated_twice_is_not_named(integrand):
+    assert findings(shape(**FLAT | {"functional": {"integrand": integrand}}, constants={"c": 1})) == ()
