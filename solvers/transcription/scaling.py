@@ -49,6 +49,9 @@ SPIKE = 0.01
 SHRINKAGE = 1e-3
 """How much smaller a size may become from one mesh to the next: what tends to zero must not be blown up."""
 
+ROUNDING = 1e-13
+"""What is smaller than this, relative to its size before, is zero: its size is left as it was."""
+
 FAINT = 1e-3
 """The least size of a derivative, relative to that of what it is the derivative of over the whole range: where a
 function hardly moves, its slope is the minimiser's noise, which no mesh resolves."""
@@ -100,7 +103,12 @@ def find_scales(compiled: Compiled, where: Layout, z: Array, before: Scales | No
     )
     if before is None:
         return found
-    return Scales(*(np.maximum(getattr(found, f.name), SHRINKAGE * getattr(before, f.name)) for f in fields(Scales)))
+    return Scales(*(_kept(getattr(found, f.name), getattr(before, f.name)) for f in fields(Scales)))
+
+
+def _kept(found: Array, before: Array) -> Array:
+    """Sizes that do not fall too fast, nor to what is nothing but rounding."""
+    return np.where(found < ROUNDING * before, before, np.maximum(found, SHRINKAGE * before))
 
 
 def not_faint(sizes: dict[tuple[str, int], float], span: float) -> None:

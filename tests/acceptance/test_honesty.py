@@ -139,6 +139,10 @@ CASES = {
     "a small difference of large numbers": (between(1, 0, 1) | {"integrand": "y'^2 + 1e9"}, 1e9 + 1, GLOBAL),
     "thin layers": (between(1, 1, 2) | {"integrand": "1e-8*y'^2 + y^2"}, 5e-4, GLOBAL),
     "no more than a corner": (between(1) | {"integrand": "(y'^2 - 1)^2 + y^2"}, None, NONE | OPEN),
+    # F(y') between zeros, convex near y' = 0 or everywhere: y = 0 (Jensen), but sinh falls for ever to one side
+    "nothing, with a linear term": (between(1) | {"integrand": "y'^2 + y'"}, 0.0, GLOBAL),
+    "nothing, with an angle": (between(1) | {"integrand": "y'^2 + atan(y')"}, 0.0, LEAST),
+    "nothing, beside an abyss": (between(1) | {"integrand": "y'^2 + sinh(y')"}, None, NONE),
     "a plant that runs away": (
         over(1, endpoints=["y(0) = 1", "y(1) = 0"]) | {
             "unknowns": {"y": {}, "u": {}}, "integrand": "u^2", "dynamics": ["y' = 30*y + u"]},

@@ -187,6 +187,19 @@ def test_a_size_does_not_collapse_from_one_mesh_to_the_next():
     assert np.all(after.controls >= 1e-3 * before.controls)
 
 
+def test_the_rounding_of_zero_is_no_size():
+    problem = stated()
+    *_, before = scales_of(problem)
+
+    def zero(where, z):
+        z[where.nodes], z[where.inner], z[where.controls] = 1e-17, -1e-17, 1e-16
+        return z
+
+    *_, after = scales_of(problem, zero, before)
+    np.testing.assert_array_equal(after.states, before.states)
+    np.testing.assert_array_equal(after.controls, before.controls)
+
+
 def test_row_sizes_are_changes_over_the_scales():
     problem = stated(endpoints=["x(0) = 10", "x(0)*x(1) = 20"], constraints=["3*x + u <= 1000"])
     functions, where, z, scales = scales_of(problem)
