@@ -32,6 +32,7 @@ from solvers.forms.gauge import Form, Gauged, in_parametric_form
 from solvers.forms.gauge_arcs import in_parametric_form_by_arcs
 from solvers.forms.graph import as_graph, checks_on_graph, prices_of_original, uprights
 from solvers.forms.rejoin import rejoin
+from solvers.forms.ridge import off_ridge
 from solvers.forms.signs import better_below, one_signed, positive, positive_along, where_defined
 from solvers.forms.slack import SLACK, with_slacks
 from solvers.minimise.ipopt import FLOOR
@@ -255,7 +256,7 @@ def _found(problem: Problem, watch: Watch | None, deadline: Deadline, form: Form
         if (pursuit.solved and pursuit.end is not End.TORN) or pursuit.end in (End.STOPPED, End.TIME):
             return Found(pursuit, gauged)
     pursuit = _in_given_form(with_slacks(problem), watch, deadline)
-    return Found(with_corner(pursuit, watch, deadline) or pursuit, None)
+    return Found(off_ridge(pursuit, watch, deadline) or with_corner(pursuit, watch, deadline) or pursuit, None)
 
 
 def _in_given_form(problem: Problem, watch: Watch | None, deadline: Deadline) -> Pursuit:
