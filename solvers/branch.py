@@ -133,7 +133,15 @@ class _Follower:
             if self._add(here):
                 return "Stopped."
             step = min(step * (1.5 if count <= QUICK else 1.0 if count <= QUICK + 2 else 0.6), LONGEST)
-        return f"The branch has {POINTS} points; it may go on."
+        return self._unfinished(here)
+
+    def _unfinished(self, here: _At) -> str:
+        """That the branch may go on, and how to follow it on."""
+        unit = self.path.program.compiled.lowered.problem.constants[self.index].unit
+        shown = f"{here.at / unit.factor:.6g} {unit.text}".rstrip()
+        told = f"The branch has {POINTS} points; it may go on. To follow it from here, give {self.constant} the value "
+        told += f"{shown} under `constants`"
+        return f"{told}, with a `guess` near this branch: it is behind a fold." if self.folds else f"{told}."
 
     def _stuck(self) -> str:
         """Why no further point was found."""

@@ -2,20 +2,33 @@
 
 from __future__ import annotations
 
+import math
+from collections.abc import Iterable
+from dataclasses import replace
+
+from solvers import checks
+from solvers.minimise.elastic import broken
 from solvers.search.record import End, Pursuit
-from solvers.solution import Diagnosis, Finding
+from solvers.solution import Check, Diagnosis, Finding, Status
 
 KEPT = "The best curve so far is kept"
 NOTHING_KEPT = "No curve had been found by then"
 
+OUT_OF_TIME = f"The time limit was reached before the tolerance. {KEPT}."
+
+CUT_SHORT = (End.TIME.value, End.POINTS.value, End.STOPPED.value)
+COARSE = 0.1
+"""Relative error of a mesh that has hardly anything of the curve."""
+HARDLY = 1.5
+"""How many times the error has to fall from mesh to mesh for more time to help."""
+ASTRAY = 1e-6
+"""How far, relative to the sizes of states, the dynamics may be missed."""
 MOST_BROKEN = 3
 """Most conditions that the sentence names with how far they are broken."""
 NAMED = 6
 """Most conditions of a conflict that the sentence names; the findings have all."""
 
 _SENTENCES = {
-    End.TIME: f"The time limit was reached before the tolerance. {KEPT}; raise "
-    "`solve.time_limit`, loosen `solve.tolerance` or give a guess.",
     End.POINTS: f"The limit on points was reached before the tolerance. {KEPT}; the curve may "
     "have more corners or layers than `solve.points` allows.",
     End.STOPPED: f"The run was stopped. {KEPT}.",
@@ -42,9 +55,14 @@ def diagnose(pursuit: Pursuit) -> Diagnosis | None:
         sentence = f"A formula has no value, or no derivative, on any of the default guesses{named}."
         sentence += " A guess or a bound that avoids it helps."
     else:
-        sentence = _SENTENCES[pursuit.end]
+        sentence = OUT_OF_TIME if pursuit.end is End.TIME else _SENTENCES[pursuit.end]
         if not pursuit.solved:
             sentence = sentence.replace(KEPT, NOTHING_KEPT)
+        if pursuit.end is End.TIME:
+            sentence = f"{sentence} {_what_helps(pursuit)}"
+        if not pursuit.solved and pursuit.last is not None and pursuit.end in (End.TIME, End.STOPPED):
+            findings, astray = broken(pursuit.last[0], pursuit.last[1].z)
+            sentence = f"{sentence} {_not_met(pursuit, findings, astray)}"
     return Diagnosis(pursuit.end.value, sentence, findings)
 
 
@@ -52,6 +70,54 @@ def _undefined(finding: Finding) -> str:
     """What has no value or no derivative, and where."""
     place = "" if finding.place is None else f" at {finding.place:.6g}"
     return f"'{finding.label}'{place} ({finding.note})"
+
+
+def with_feasibility(diagnosis: Diagnosis | None, made: Iterable[Check]) -> Diagnosis | None:
+    """The diagnosis of a search that was cut short, with what its curve does not meet."""
+    failed = [
+        check.sentence
+        for check in made
+        if check.name in checks.FEASIBLE and check.status is Status.FAILED and check.figure is not None
+    ]
+    if diagnosis is None or diagnosis.reason not in CUT_SHORT or not failed:
+        return diagnosis
+    return replace(
+        diagnosis, sentence=f"{diagnosis.sentence} The curve that is kept is not feasible yet: {' '.join(failed)}"
+    )
+
+
+def _what_helps(pursuit: Pursuit) -> str:
+    """What would help a pursuit that had too little time, by what was seen of it."""
+    errors = [step.error for step in pursuit.steps if step.error]
+    if not pursuit.solved or not errors:
+        begun = f" after {pursuit.iterations} iterations" if pursuit.iterations else ""
+        return (f"The first mesh was not through{begun}: a `guess` near the curve, bounds on the unknowns or a simpler "
+                "version of the problem help most, else a greater `solve.time_limit`.")  # fmt: skip
+    if len(errors) == 1:
+        return (f"One mesh was solved, in {pursuit.iterations} iterations, with a relative error of {errors[0]:.1e}: a "
+                "`guess` near the curve shortens that; else raise `solve.time_limit`.")  # fmt: skip
+    if errors[-1] > COARSE:
+        return (f"The {len(errors)} meshes so far are too coarse for this curve (relative error {errors[-1]:.1e}): "
+                "raise `solve.time_limit` several times, or try a shorter range first.")  # fmt: skip
+    factor = (errors[0] / errors[-1]) ** (1 / (len(errors) - 1))
+    if factor < HARDLY:
+        return (f"The relative error has hardly fallen over {len(errors)} meshes ({errors[0]:.1e}, now "
+                f"{errors[-1]:.1e}), so that more time alone may not do: loosen `solve.tolerance`, or look whether "
+                "the curve has corners or layers that the problem could name as places.")  # fmt: skip
+    left = max(1, math.ceil(math.log(errors[-1] / pursuit.problem.options.tolerance) / math.log(factor)))
+    meshes = f"{left} more mesh{'es' if left > 1 else ''}"
+    return (f"The relative error fell {factor:.2g} times from mesh to mesh and is {errors[-1]:.1e} now: about {meshes} "
+            f"would do, the last one took {pursuit.steps[-1].seconds:.2g} s. Raise `solve.time_limit`.")  # fmt: skip
+
+
+def _not_met(pursuit: Pursuit, findings: tuple[Finding, ...], astray: float) -> str:
+    """What the curve that was reached by then does not meet."""
+    named = [_with_amount(pursuit, finding) for finding in findings[:MOST_BROKEN]]
+    if astray > ASTRAY:
+        named.append(f"the dynamics by {astray:.2g} of their size")
+    if not named:
+        return "What was reached by then meets all conditions, but is not the best yet."
+    return f"What was reached by then is not feasible; it misses {'; '.join(named)}."
 
 
 def _of_conflicts(pursuit: Pursuit) -> str:

@@ -22,7 +22,7 @@ from solvers.checks.redundancy import unambiguous
 from solvers.checks.sampling import Sampler
 from solvers.curve import Curve
 from solvers.deadline import Deadline, in_seconds
-from solvers.diagnosis import diagnose
+from solvers.diagnosis import diagnose, with_feasibility
 from solvers.forms.arc_guess import with_sketches
 from solvers.forms.beside import side_by_side
 from solvers.forms.broken import with_corner
@@ -327,6 +327,8 @@ def _solution(
     diagnosis = diagnose(pursuit)
     times = {"solve": solved_at - began}
     if not pursuit.solved:
+        if diagnosis is not None and gauged is not None and gauged.graph:  # their places are in the parameter
+            diagnosis = replace(diagnosis, findings=tuple(replace(f, place=None) for f in diagnosis.findings))
         nearest = None if pursuit.nearest is None or gauged is not None else curve(pursuit.nearest)
         return Solution(EARLY.get(pursuit.end), curve=nearest, diagnosis=diagnosis, meshes=tuple(pursuit.steps),
                         iterations=pursuit.iterations, times=times)  # fmt: skip
@@ -344,6 +346,7 @@ def _solution(
     if conditions.NAME not in known and np.isfinite(taken := conditions.value_anew(sampler)):
         value_error += abs(taken - value)
         value_error_or_none = None if value_error_or_none is None else value_error
+    diagnosis = with_feasibility(diagnosis, made)
     verdict = judge(problem.seek, made, pursuit.end)
     if verdict in PROVED and (gap := lower_bound.gap(made)) is not None:  # the bound says it better than the meshes
         shown = gap * pursuit.value_size + FLOOR * abs(path.program.value_scale)

@@ -210,13 +210,8 @@ def least_violation(
     `steadily` lowers the barrier step by step: slower where all goes well, but from a start that is no good it arrives.
     """
     parts = groups(program)
-    size, count = program.layout.size, program.rows.count
-    owner_of_row, owner_of_variable = np.full(count, -1), np.full(size, -1)
-    for index, group in enumerate(parts):
-        owner_of_row[group.rows] = index
-        # A variable may be held by an endpoint value and by a bound: the endpoint value, which comes first, keeps it.
-        free = group.variables[owner_of_variable[group.variables] < 0]
-        owner_of_variable[free] = index
+    size = program.layout.size
+    owner_of_row, owner_of_variable = _owners(program, parts)
     relaxed, held = np.flatnonzero(owner_of_row >= 0), np.flatnonzero(owner_of_variable >= 0)
     hard = np.flatnonzero(owner_of_row < 0)
     m, k = len(relaxed), len(held)
@@ -260,22 +255,46 @@ def least_violation(
     return LeastViolation(answer, float(np.sum(amounts[amounts > 1e-7])), findings, forces, minimum)
 
 
+def _owners(program: Program, parts: list[Group]) -> tuple[Indices, Indices]:
+    """Which group every row and every variable belongs to, -1 where to none."""
+    of_rows, of_variables = np.full(program.rows.count, -1), np.full(program.layout.size, -1)
+    for index, group in enumerate(parts):
+        of_rows[group.rows] = index
+        # A variable may be held by an endpoint value and by a bound: the endpoint value, which comes first, keeps it.
+        of_variables[group.variables[of_variables[group.variables] < 0]] = index
+    return of_rows, of_variables
+
+
+def broken(program: Program, z: Array) -> tuple[tuple[Finding, ...], float]:
+    """What scaled variables break as they stand, worst first, and how far they miss the dynamics (relative)."""
+    parts = groups(program)
+    of_rows, of_variables = _owners(program, parts)
+    rows, variables = _excess(program, z)
+    amounts = np.zeros(len(parts))
+    np.maximum.at(amounts, of_rows[of_rows >= 0], rows[of_rows >= 0])
+    np.maximum.at(amounts, of_variables[of_variables >= 0], variables[of_variables >= 0])
+    return _findings(program, parts, of_variables, z, amounts), float(rows[: program.rows.pointwise].max(initial=0.0))
+
+
+def _excess(program: Program, z: Array) -> tuple[Array, Array]:
+    """How far rows and variables are outside of their limits, scaled; what has no value counts as one."""
+    values = program.numbers.constraints(z)
+    rows = np.maximum(program.row_lower - values, values - program.row_upper)
+    return np.nan_to_num(rows, nan=1.0), np.maximum(program.lower - z, z - program.upper)
+
+
 def _first_slacks(program: Program, z: Array, of_rows: Indices, of_variables: Indices, count: int) -> Array:
     """Somewhat more than what each condition is broken by at the start: at least a little, at most one."""
-    values = program.numbers.constraints(z)
-    excess = np.concatenate([np.maximum(program.row_lower - values, values - program.row_upper),
-                             np.maximum(program.lower - z, z - program.upper)])  # fmt: skip
+    excess = np.concatenate(_excess(program, z))
     owners = np.concatenate([of_rows, of_variables])
     slacks: Array = np.full(count, LEAST_SLACK)
-    np.maximum.at(slacks, owners[owners >= 0], 1.1 * np.clip(np.nan_to_num(excess[owners >= 0], nan=1.0), 0.0, 1.0))
+    np.maximum.at(slacks, owners[owners >= 0], 1.1 * np.clip(excess[owners >= 0], 0.0, 1.0))
     return np.asarray(np.minimum(slacks, 1.0))
 
 
-def _findings(program: Program, parts: list[Group], owners: Array, z: Array, amounts: Array) -> tuple[Finding, ...]:
+def _findings(program: Program, parts: list[Group], owners: Indices, z: Array, amounts: Array) -> tuple[Finding, ...]:
     """What is broken, worst first, with the place where it is."""
-    values = program.numbers.constraints(z)
-    row_excess = np.maximum(program.row_lower - values, values - program.row_upper)
-    excess = np.maximum(program.lower - z, z - program.upper)
+    row_excess, excess = _excess(program, z)
     found = []
     for index in np.argsort(-amounts):
         if amounts[index] <= 1e-6:

@@ -104,3 +104,10 @@ def test_a_stop_ends_the_branch():
     branch = solve(problem, lambda progress: progress.point is not None and progress.point[0] == 3).branch
     assert len(branch.points) == 3
     assert branch.end == "Stopped."
+
+
+def test_a_branch_that_is_cut_short_says_how_to_follow_it_on(monkeypatch):
+    monkeypatch.setattr("solvers.branch.POINTS", 2)
+    branch = followed(film(), "h", 1.3)
+    told = f"To follow it from here, give h the value {branch.points[-1].at:.6g} under `constants`."
+    assert branch.end == f"The branch has 2 points; it may go on. {told}"

@@ -2,9 +2,15 @@
 
 import pytest
 
-from solvers.diagnosis import diagnose
+from solvers.diagnosis import diagnose, with_feasibility
+from solvers.minimise.elastic import broken
+from solvers.minimise.ipopt import Minimum, Outcome
+from solvers.search.attempt import make_program
 from solvers.search.record import End, Pursuit
-from solvers.solution import Finding
+from solvers.solution import Check, Finding, MeshStep, Status
+from solvers.starts.guess import first_guess
+from solvers.transcription.layout import layout
+from solvers.transcription.mesh import uniform
 from tests.unit.solvers.problems import compiled, stated
 
 
@@ -77,3 +83,56 @@ def test_what_is_undefined_is_shown_with_its_place():
 @pytest.mark.parametrize("end, advice", [(End.TIME, "solve.time_limit"), (End.POINTS, "solve.points")])
 def test_limits_say_which_setting_to_raise(end, advice):
     assert f"`{advice}`" in diagnose(pursuit(end)).sentence
+
+
+def mesh(error, seconds=0.5):
+    return MeshStep(8, 32, 4, 4, 1.0, error, 20, seconds)
+
+
+@pytest.mark.parametrize(
+    "errors, advice",
+    [
+        ([1e-2], "One mesh was solved, in 20 iterations, with a relative error of 1.0e-02: a `guess`"),
+        ([1e-2, 1e-3, 1e-4], "fell 10 times from mesh to mesh and is 1.0e-04 now: about 2 more meshes would do"),
+        ([0.9, 0.5], "The 2 meshes so far are too coarse for this curve (relative error 5.0e-01): raise"),
+        ([1e-2, 9e-3, 8e-3], "hardly fallen over 3 meshes (1.0e-02, now 8.0e-03), so that more time alone"),
+    ],
+    ids=("one mesh", "falling", "too coarse", "hardly falling"),
+)
+def test_what_helps_is_what_was_seen(errors, advice):
+    found = pursuit(End.TIME)
+    found.paths.append(None)
+    found.steps += [mesh(error) for error in errors]
+    found.iterations = 20
+    assert advice in diagnose(found).sentence
+
+
+def test_a_curve_that_is_not_feasible_yet_says_what_it_misses_and_by_how_much():
+    """x' = u from x(0) = 1, with x <= 2: a start at rest at 3 breaks both, and x' = 2 is not met."""
+    problem = stated(unknowns={"x": {"within": [None, 2]}, "u": {}}, endpoints=["x(0) = 1"])
+    where = layout(made := compiled(problem), uniform(1, 2, 3))
+    guess = first_guess(made, uniform(1, 2, 3), where).z
+    program = make_program(made, uniform(1, 2, 3), where, guess)
+    z = guess / program.scale
+    z[where.nodes[:, 0]] = z[where.inner[:, 0]] = 3.0 / program.scale[where.nodes[0, 0]]
+    z[where.controls[:, 0]] = 0.0
+    findings, astray = broken(program, z)
+    assert {finding.label: finding.amount for finding in findings} == pytest.approx(
+        {"x(0) = 1": 2, "x within its bounds": 1}
+    )
+    assert astray == pytest.approx(0, abs=1e-12)
+    z[where.controls[:, 0]] = 2.0 / program.scale[where.controls[0, 0]]
+    assert broken(program, z)[1] > 0.1
+    found = pursuit(End.TIME)
+    found.last = program, Minimum(Outcome.TIME, z, 0.0, z, z, 1, 0.0, 0.0, "")
+    assert "is not feasible; it misses 'x(0) = 1' by 2; 'x within its bounds' by 1; the dyn" in diagnose(found).sentence
+
+
+def test_a_kept_curve_that_fails_its_conditions_is_said_not_to_be_feasible_yet():
+    exceeded = Check("limits", Status.FAILED, "'x' is exceeded by at most 2.0e-02 of its size.", 0.02)
+    other = Check("stationarity", Status.FAILED, "The costates are off.", 1.0)
+    unmade = Check("motion", Status.FAILED, "Not made: the time was over.")
+    told = with_feasibility(diagnose(pursuit(End.TIME)), [exceeded, unmade, other])
+    assert told.sentence.endswith("not feasible yet: 'x' is exceeded by at most 2.0e-02 of its size.")
+    assert with_feasibility(told, [other]) is told
+    assert with_feasibility(None, [exceeded]) is None
