@@ -37,6 +37,7 @@ from solvers.forms.signs import better_below, one_signed, positive, positive_alo
 from solvers.forms.slack import SLACK, with_slacks
 from solvers.minimise.ipopt import FLOOR
 from solvers.problem import Continuation, Problem, Seek
+from solvers.search.at_bound import at_bound
 from solvers.search.chatter import chatter
 from solvers.search.early import sharpened_early
 from solvers.search.escape import escapes
@@ -250,6 +251,8 @@ def _found(problem: Problem, watch: Watch | None, deadline: Deadline, form: Form
             gauged = where_defined(at_constant_speed(gauged, look()))
             pursuit = _in_given_form(with_slacks(gauged.problem), watch, room)
         if squared and pursuit.solved and not _rightly_squared(gauged, pursuit, doubtful):
+            if (best := at_bound(problem, pursuit)) is not None:
+                return Found(best, None)
             continue
         if doubtful and pursuit.solved and pursuit.end is End.TIME:
             pursuit = go_on(pursuit, watch, deadline)

@@ -47,6 +47,24 @@ def test_a_value_of_zero_has_its_root():
     assert found.value is None or abs(found.value) <= 1e-6
 
 
+CLOSED = {
+    "anywhere": ["y(0) = y(1)", "z(0) = z(1)"],
+    "through a point": ["y(0) = y(1)", "z(0) = z(1)", "y(0) = 1"],
+    "from a point to itself": ["y(0) = 1", "y(1) = 1", "z(0) = 0", "z(1) = 0"],
+}
+
+
+@pytest.mark.parametrize("endpoints", CLOSED.values(), ids=CLOSED)
+def test_a_closed_curve_shrinks_to_a_point(endpoints):
+    """Length zero is the least there is, and every point has it; on a point the length has no derivative."""
+    found = solve(over_one("sqrt(y'^2 + z'^2)", endpoints=endpoints, unknowns={"y": {}, "z": {}}))
+    assert found.verdict is Verdict.GLOBAL_MINIMUM
+    assert abs(found.value) <= found.value_error + 1e-12
+    assert found.diagnosis is None
+    if "y(0) = 1" in endpoints:
+        assert found.curve.evaluate("y", np.linspace(0, 1, 9)) == pytest.approx(1)
+
+
 TWO_ENDS = {
     "square": (["y(0)^2 = 1", "y(1) = 0"], 1.0),
     "cubic": (["y(0) = -1", "y(1)^3 - 3*y(1) = 10"], (1 + 2.6128878647) ** 2),
