@@ -20,7 +20,10 @@ LEAST_GAIN = 0.005
 TORN_MESHES = 4
 """So many meshes in a row ..."""
 TORN_ERROR = 0.05
-"""... with such an error at one place that hardly falls, although it is cut finer each time: the curve jumps there."""
+"""... with such an error at one place that hardly falls, although it is cut finer each time: the curve jumps ..."""
+NARROWER = 0.5
+STAYING = 0.7
+"""... if within so much of the width, or less, it rises by so much of what it did or more."""
 
 
 def estimate_errors(pursuit: Pursuit, found: refinement.Estimate) -> None:
@@ -58,15 +61,22 @@ def settled(pursuit: Pursuit) -> End | None:
 
 
 def _jump(pursuit: Pursuit) -> tuple[Finding, ...]:
-    """Which state jumps where: over an ever narrower interval at one place on each of the last meshes."""
-    edges = []
+    """Which state jumps where: over an ever narrower interval at one place on each of the last meshes.
+
+    At a blurred switch of a control states rise the less the narrower the interval is; where one jumps the rise stays.
+    """
+    edges, rises = [], []
     for path, found in zip(pursuit.paths[-TORN_MESHES:], pursuit.estimates[-TORN_MESHES:], strict=True):
         worst = int(np.argmax(found.errors))
         edges.append(path.breaks[worst : worst + 2])
+        inside = slice(*path.program.layout.first[worst : worst + 2])
+        rise = np.ptp(np.vstack([path.nodes[worst : worst + 2], path.states[inside]]), axis=0)
+        rises.append(rise / np.maximum(np.abs(path.states).max(axis=0), 1e-300))
     if not all(after[0] >= before[0] - 1e-12 and after[1] <= before[1] + 1e-12 for before, after in pairwise(edges)):
         return ()
-    inside = slice(*path.program.layout.first[worst : worst + 2])
-    rise = np.ptp(np.vstack([path.nodes[worst : worst + 2], path.states[inside]]), axis=0)
-    largest = int(np.argmax(rise / np.maximum(np.abs(path.states).max(axis=0), 1e-300)))
-    name = primed(pursuit.compiled.lowered.states[largest])
+    narrower = float(np.ptp(edges[-1]) / np.ptp(edges[0]))
+    staying = (rises[-1] > STAYING * rises[0]) & (rises[-1] > 0)
+    if narrower >= NARROWER or not staying.any():
+        return ()
+    name = primed(pursuit.compiled.lowered.states[int(np.argmax(np.where(staying, rises[-1], 0.0)))])
     return (Finding(name, "", None, float(edges[-1].mean()), "jumps"),)

@@ -238,3 +238,38 @@ def test_the_fastest_way_down_to_a_line_is_a_cycloid():
     })  # fmt: skip
     assert found.verdict in LEAST
     assert abs(found.value - math.sqrt(pi / 9.81)) <= found.value_error
+
+
+def test_a_power_without_a_slope_where_the_guess_lies_is_named():
+    """(y'^2)^(3/4) is |y'|^(3/2); on y = 0 its derivative is infinity times zero."""
+    found = solved(between(1) | {"integrand": "(y'^2)^0.75 - y"})
+    if found.verdict in LEAST:
+        assert abs(found.value + 1 / 216) <= found.value_error
+    else:
+        (finding,) = found.diagnosis.findings
+        assert (finding.label, finding.note) == ("(y'^2)^0.75", "no derivative, with y'^2 = 0")
+        assert "'(y'^2)^0.75'" in found.diagnosis.sentence
+
+
+def test_a_switch_under_a_limit_that_moves_with_the_state_is_no_jump():
+    """y' = u - y/5 with 0 <= u <= 3 y/2: all until s, then nothing; the least is where exp(-(2 - s)/5) = 6.3/7.5.
+
+    The integral of 0.8 u - y is 0.2 (w - 1)/1.3 - 5 w 0.16 with w = exp(1.3 s); its slope in s vanishes there.
+    """
+    found = solved(over(2, endpoints=["y(0) = 1"]) | {
+        "unknowns": {"y": {}, "u": {}}, "integrand": "0.8*u - y", "dynamics": ["y' = u - y/5"],
+        "constraints": ["0 <= u <= 1.5*y"],
+    })  # fmt: skip
+    w = math.exp(1.3 * (2 + 5 * math.log(6.3 / 7.5)))
+    assert found.verdict in LEAST
+    assert abs(found.value - 0.2 * (w - 1) / 1.3 + 0.8 * w) <= found.value_error
+
+
+@pytest.mark.parametrize("given", [[], ["y(0) = 1"], ["y(0) = 1", "z(0) = 2"]], ids=len)
+def test_a_closed_curve_of_least_length_is_a_point(given):
+    found = solved({
+        "independent": {"name": "x", "from": 0, "to": 1}, "unknowns": {"y": {}, "z": {}},
+        "integrand": "sqrt(y'^2 + z'^2)", "endpoints": ["y(0) = y(1)", "z(0) = z(1)", *given],
+    })  # fmt: skip
+    assert found.verdict in GLOBAL
+    assert abs(found.value) <= found.value_error + 1e-12
