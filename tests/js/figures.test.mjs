@@ -11,11 +11,13 @@ test("colours of the style sheet take the place of their names", () => {
 });
 
 test("a layout keeps what the service said and gets the colours of the paper", () => {
-  const given = { xaxis: { title: { text: "t [s]" } }, yaxis: { title: { text: "y" }, type: "log" }, shapes: [{ x0: 1, line: { width: 1 } }] };
+  const given = { xaxis: { title: { text: "t [s]" } }, yaxis: { title: { text: "y" }, type: "log" }, shapes: [{ x0: 1, line: { width: 1 } }, { fillcolor: "--line-2", line: { width: 0 } }] };
   const made = dressed(given, colour, { font: "plain", coarse: false });
   assert.equal(made.yaxis.type, "log");
   assert.equal(made.xaxis.title.text, "t [s]");
   assert.equal(made.shapes[0].line.color, "colour of --faint");
+  assert.ok(!("fillcolor" in made.shapes[0]));
+  assert.equal(made.shapes[1].fillcolor, "colour of --line-2");
   assert.equal(made.dragmode, "zoom");
 });
 

@@ -51,12 +51,26 @@ class Trace:
 
 
 @dataclass(frozen=True, slots=True)
+class Span:
+    """A stretch of the lower axis that is shaded in the colour of a line (its `number`)."""
+
+    start: float
+    end: float
+    number: int
+
+    @property
+    def colour(self) -> str:
+        """Name of the style sheet's variable that holds its colour."""
+        return f"--line-{self.number % len(LINES) + 1}"
+
+
+@dataclass(frozen=True, slots=True)
 class Plot:
     """Lines over common axes.
 
     `finding` says in one sentence what is to be seen; `table` holds some values of it (rows, 1 + lines), NaN where
-    there is none.  `rug` marks places on the lower axis.  `equal` asks for one scale on both axes, `from_zero` for a
-    linear axis that begins at 0, `whole_places` for whole numbers along the lower axis.
+    there is none.  `rug` marks places on the lower axis, `spans` are shaded.  `equal` asks for one scale on both axes,
+    `from_zero` for a linear axis that begins at 0, `whole_places` for whole numbers along the lower axis.
     """
 
     key: str
@@ -72,6 +86,7 @@ class Plot:
     from_zero: bool = False
     whole_places: bool = False
     rug: Array = field(default_factory=lambda: NOTHING)
+    spans: tuple[Span, ...] = ()
 
     def extent(self) -> tuple[float, float, float, float]:
         """Least and greatest place, least and greatest value over all lines; never of width zero."""

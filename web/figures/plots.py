@@ -14,7 +14,7 @@ from web.extremes import extremes_of
 from web.figures import findings
 from web.figures.labels import bracketed, identifier
 from web.figures.observed import observed_plots
-from web.figures.plot import Plot, Trace
+from web.figures.plot import Plot, Span, Trace
 from web.figures.series import jumps, series
 from web.figures.tabulated import tabulated
 from web.palette import LINES
@@ -34,7 +34,7 @@ def plots(result: Mapping[str, Any]) -> tuple[Plot, ...]:
     made: list[Plot] = []
     if trajectory is not None:
         made += _path(trajectory)
-        made += _functions(trajectory, read_changes(result))
+        made += _functions(trajectory, read_changes(result), result.get("stretches") or ())
         made += _derivatives(trajectory)
         costates = read_costates(result)
         if costates is not None:
@@ -49,9 +49,23 @@ def plots(result: Mapping[str, Any]) -> tuple[Plot, ...]:
     return tuple(made)
 
 
-def _functions(trajectory: Trajectory, changes: Sequence[Trajectory]) -> Iterable[Plot]:
+def _functions(
+    trajectory: Trajectory, changes: Sequence[Trajectory], stretches: Iterable[Mapping[str, Any]]
+) -> Iterable[Plot]:
+    singular = [stretch for stretch in stretches if stretch["course"] == "singular"]
     for plot in _grouped(trajectory, trajectory.names, 0, "curve", "Curve"):
-        yield _with_bands(plot, changes)
+        yield _with_spans(_with_bands(plot, changes), singular)
+
+
+def _with_spans(plot: Plot, singular: Sequence[Mapping[str, Any]]) -> Plot:
+    """The plot with the stretches shaded along which one of its lines is a singular control."""
+    numbers = {trace.label: trace.number for trace in plot.traces}
+    own = [stretch for stretch in singular if stretch["of"] in numbers]
+    if not own:
+        return plot
+    spans = tuple(Span(stretch["from"], stretch["to"], numbers[stretch["of"]]) for stretch in own)
+    told = " and ".join(dict.fromkeys(str(stretch["of"]) for stretch in own))
+    return replace(plot, spans=spans, finding=f"{plot.finding} Shaded from top to bottom: {told} runs singular.")
 
 
 def _with_bands(plot: Plot, changes: Sequence[Trajectory]) -> Plot:

@@ -50,11 +50,17 @@ def spec(plot: Plot) -> dict[str, Any]:
     if plot.whole_places:
         across |= {"dtick": max(1, math.ceil(max(len(trace.places) for trace in plot.traces) / 12))}
     layout: dict[str, Any] = {"xaxis": across, "yaxis": up, "showlegend": several}
-    if len(plot.rug):
-        layout["shapes"] = [
-            {"type": "line", "xref": "x", "yref": "paper", "x0": x, "x1": x, "y0": 0, "y1": 0.03, "line": {"width": 1}}
-            for x in _numbers(plot.rug)
-        ]
+    shapes: list[dict[str, Any]] = [
+        {"type": "line", "xref": "x", "yref": "paper", "x0": x, "x1": x, "y0": 0, "y1": 0.03, "line": {"width": 1}}
+        for x in _numbers(plot.rug)
+    ]
+    shapes += [
+        {"type": "rect", "xref": "x", "yref": "paper", "x0": span.start, "x1": span.end, "y0": 0, "y1": 1,
+         "fillcolor": span.colour, "opacity": 0.12, "layer": "below", "line": {"width": 0}}
+        for span in plot.spans
+    ]  # fmt: skip
+    if shapes:
+        layout["shapes"] = shapes
     return {"data": data, "layout": layout}
 
 

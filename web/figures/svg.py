@@ -13,7 +13,7 @@ import numpy as np
 
 from solvers.curve import Array
 from web.display import number
-from web.figures.plot import Plot, Trace
+from web.figures.plot import Plot, Span, Trace
 from web.figures.ticks import decades, power_of_ten, ticks
 
 WIDTH, HEIGHT = 480, 300
@@ -34,6 +34,7 @@ def svg(plot: Plot) -> str:
     parts = [
         f'<svg class="plot-still" viewBox="0 0 {WIDTH} {HEIGHT}" aria-hidden="true" focusable="false">',
         *_axes(plot, (left, right, low, high), across, up, top),
+        *(_span(span, across, top) for span in plot.spans),
         *(_band(trace, (low, high), across, up) for trace in plot.traces if trace.band is not None),
         *(_line(trace, across, up, plot.logarithmic) for trace in plot.traces),
         *legend,
@@ -138,6 +139,12 @@ def _band(trace: Trace, ranges: tuple[float, float], across: Scale, up: Scale) -
     way = [(trace.places[k], upper[k]) for k in there] + [(trace.places[k], lower[k]) for k in there[::-1]]
     points = " ".join(f"{across(x):.1f},{up(y):.1f}" for x, y in way)
     return f'<polygon class="plot-band {trace.colour[2:]}" points="{points}"/>'
+
+
+def _span(span: Span, across: Scale, top: float) -> str:
+    left, right = across(span.start), across(span.end)
+    place = f'x="{left:.1f}" y="{top}" width="{right - left:.1f}" height="{HEIGHT - BOTTOM - top}"'
+    return f'<rect class="plot-span {span.colour[2:]}" {place}/>'
 
 
 def _thinned(places: Array, values: Array) -> tuple[Array, Array]:

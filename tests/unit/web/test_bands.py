@@ -7,6 +7,7 @@ import pytest
 
 from web.figures import drawn
 from web.figures.branch import branch_plot
+from web.figures.plot import Span
 from web.figures.plots import plots
 from web.figures.spec import spec
 from web.pages.result import result_page
@@ -60,6 +61,19 @@ def test_without_tolerances_nothing_is_shaded(hose):
     assert plot.traces[0].band is None
     assert "plot-band" not in drawn(plot).still
     assert len(spec(plot)["data"]) == 1
+
+
+def test_where_a_control_is_singular_both_pictures_are_shaded(hose):
+    stretches = [{"of": "y", "arc": "", "from": 0.5, "to": 1.25, "course": "singular"},
+                 {"of": "y", "arc": "", "from": 1.25, "to": 3.0, "course": "at its upper limit"}]  # fmt: skip
+    plot = next(plot for plot in plots({**hose, "stretches": stretches}) if plot.key.startswith("curve"))
+    assert plot.spans == (Span(0.5, 1.25, 0),)
+    assert drawn(plot).still.count('class="plot-span line-1"') == 1
+    (shape,) = spec(plot)["layout"]["shapes"]
+    assert (shape["x0"], shape["x1"], shape["fillcolor"], shape["layer"]) == (0.5, 1.25, "--line-1", "below")
+    assert plot.finding.endswith("Shaded from top to bottom: y runs singular.")
+    plain = next(plot for plot in plots(hose) if plot.key.startswith("curve"))
+    assert plain.spans == () and "plot-span" not in drawn(plain).still
 
 
 def test_where_a_curve_is_vertical_the_band_does_not_squeeze_the_picture(banded):

@@ -44,7 +44,11 @@ export function dressed(layout, colour, { font, coarse }) {
     ...layout,
     xaxis: axis(layout.xaxis),
     yaxis: axis(layout.yaxis),
-    shapes: (layout.shapes ?? []).map((shape) => ({ ...shape, line: { ...shape.line, color: colour("--faint") } })),
+    shapes: (layout.shapes ?? []).map((shape) => ({
+      ...shape,
+      line: { ...shape.line, color: colour("--faint") },
+      ...(shape.fillcolor ? { fillcolor: colour(shape.fillcolor) } : {}),
+    })),
     paper_bgcolor: "rgba(0,0,0,0)",
     plot_bgcolor: "rgba(0,0,0,0)",
     font: { family: font, color: colour("--ink") },

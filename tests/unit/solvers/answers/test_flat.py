@@ -33,6 +33,13 @@ def test_a_closed_curve_may_be_anywhere():
     assert found["x"].pointer == "/unknowns/x"
 
 
+def test_a_closed_curve_that_is_pinned_at_one_point_may_be_turned_about_it():
+    """The length as an integral, no guess: the curve is found in parametric form."""
+    pinned = {**CLOSED, "endpoints": [*CLOSED["endpoints"], "x(0) = 0", "y(0) = 0"], "guess": {}}
+    length = {"constraints": ["integral(sqrt(x'^2 + y'^2)) = 1"]}
+    assert set(found_in(shape(**pinned | length))) == {"x", "y"}
+
+
 def test_what_only_enters_as_a_sum_is_free_apart():
     problem = stated(
         parameters={"a": {"within": [-10, 10]}, "b": {"within": [-10, 10]}, "c": {"within": [-10, 10]}},
