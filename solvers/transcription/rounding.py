@@ -39,6 +39,8 @@ Array = NDArray[np.float64]
 
 ZONE = 1e3 * SMOOTHING
 """How near to a kink of `abs` the curve of the exact problem may run in it."""
+BESIDE = 10 * SMOOTHING
+"""How near to one a curve lies in it; farther off the rounded function is as straight as the exact one."""
 SHIFTS = (-1.0, -0.5, 0.0, 0.5, 1.0)
 """Where a table is compared with its exact one, around an argument and relative to the reach of its roundings."""
 BETWEEN_SHIFTS = 2.0
@@ -84,9 +86,8 @@ class _Marking(Lookups):
         return {**with_kinks(self._absolute, self._sign), "table": self._table}
 
     def _absolute(self, x: ca.SX) -> ca.SX:
-        near = ca.fabs(x) < ZONE
-        most = ca.if_else(near, SMOOTHING, smooth_abs(x) - ca.fabs(x))
-        return smooth_abs(x) + self._mark(most, near, x)
+        most = ca.if_else(ca.fabs(x) < ZONE, SMOOTHING, smooth_abs(x) - ca.fabs(x))
+        return smooth_abs(x) + self._mark(most, ca.fabs(x) < BESIDE, x)
 
     def _sign(self, x: ca.SX) -> ca.SX:
         return smooth_sign(x) + self._mark(1 - ca.fabs(smooth_sign(x)), ca.SX(0), x)

@@ -99,3 +99,9 @@ def test_an_exact_grid_has_sharp_corners():
     table = Table("k", ("y", "z"), (knots, knots), values, Between.LINEAR)
     assert table.value(1.0, 1.0) == pytest.approx(CORNER)
     assert table.exact.value([1.0, 1.25], [1.0, 1 - 1e-6]) == pytest.approx([0.0, 0.25 + 1e-6], abs=1e-14)
+
+
+@pytest.mark.parametrize("away, share", [(0.0, 1.0), (1e2 * SMOOTHING, 0.0)])
+def test_beside_a_concave_kink_a_curve_is_not_in_it(sketched, away, share):
+    """At a hundred widths the slope of the rounded function is that of the exact one to 5e-5."""
+    assert rounding.concave(along(sketched, document("-abs(y)"), away))[0] == pytest.approx(share, abs=0.3)
