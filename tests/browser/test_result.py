@@ -28,6 +28,16 @@ HARD = {
     "endpoints": ["q(0) = 0", "q'(0) = 0", "q(200) = 2"],
     "solve": {"tolerance": 1e-10, "time_limit": 60},
 }
+HARVEST = {
+    "format": 1,
+    "title": "Harvest of a fish stock",
+    "independent": {"name": "t", "from": 0, "to": 10},
+    "unknowns": {"x": {}, "u": {"within": [0, 1]}},
+    "dynamics": ["x' = x*(1 - x) - u"],
+    "functional": {"seek": "maximum", "integrand": "u"},
+    "endpoints": ["x(0) = 0.1", "x(10) = 0.5"],
+}
+"""No catch until the logistic growth has reached 1/2, at t = ln 9; from there on the catch is singular."""
 TIMEOUT = 60_000
 
 
@@ -146,3 +156,22 @@ def test_a_run_shows_how_it_converges_and_ends_with_its_result(open_page, server
     page.get_by_role("button", name="Stop this run").click()
     page.locator("#provenance").wait_for(timeout=TIMEOUT)
     assert page.locator("[data-live]").count() == 0
+
+
+@pytest.mark.parametrize(("scheme", "width"), [("light", 1200), ("dark", 360)])
+def test_a_singular_arc_is_shaded_told_and_handed_over(open_page, server, audit, scheme, width):
+    page = open_page(post(server, HARVEST, "wait=60")["links"]["page"], color_scheme=scheme, width=width)
+    all_alive(page)
+    assert page.locator(".plot-living .shapelayer path").count() > 0
+    assert "u runs singular" in page.locator("figure figcaption").first.inner_text()
+    rows = page.get_by_role("region", name="From switch to switch").locator("tbody tr").all_inner_texts()
+    assert [row.split("\t") for row in rows] == [
+        ["u", "0", "2.1972", "at its lower limit"],
+        ["u", "2.1972", "10", "singular"],
+    ]
+    assert audit(page) == []
+    assert page.evaluate("document.documentElement.scrollWidth") <= width
+    with page.expect_download() as waiting:
+        page.get_by_role("link", name="All stretches as CSV").click()
+    heading, *told = csv.reader(waiting.value.path().read_text().splitlines())
+    assert heading[:3] == ["of", "arc", "course"] and [row[2] for row in told] == ["at its lower limit", "singular"]
