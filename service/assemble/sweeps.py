@@ -137,7 +137,8 @@ def _out_of_order(problem: Problem, constants: Mapping[str, float]) -> str:
                 low = high = value_of(place.tree, constants)
             except (ArithmeticError, ValueError):
                 return f"the place {place.label} has no value."
-        if high <= farthest + SAME * max(abs(high), abs(farthest)):
+        rounding = SAME * max(abs(high), abs(farthest)) if math.isfinite(high - farthest) else 0.0
+        if high <= farthest + rounding:
             return f"the place {place.label} does not lie beyond {before}."
         if low > farthest:
             farthest, before = low, place.label
