@@ -18,7 +18,7 @@ from solvers.search.chatter import chatter
 from solvers.search.signals import SWITCH
 from solvers.search.structure import determined_by
 from solvers.solution import Course, Stretch
-from solvers.transcription.limits import quantity_bounds
+from solvers.transcription.limits import constants_of, interval_of, quantity_bounds
 from solvers.transcription.lowering import Quantity, primed
 from solvers.transcription.trajectory import Trajectory
 
@@ -65,9 +65,10 @@ class _Reader:
         pointwise = slice(rows.pointwise, rows.rims)
         shape = len(path.points), self.compiled.point.constraints
         values = program.numbers.constraints(path.z / program.scale)[pointwise].reshape(shape)
-        least, most = (limit[pointwise].reshape(shape) for limit in (program.row_lower, program.row_upper))
-        self.equal = (least == most).all(axis=0)
-        self.constraints = _near(values, least, most)
+        row_sizes, constants = program.row_scale[pointwise].reshape(shape), constants_of(self.compiled)
+        limits = np.array([interval_of(c, constants) for c in self.compiled.pointwise]).reshape(-1, 2)
+        self.equal = np.array([c.equality for c in self.compiled.pointwise], dtype=bool)
+        self.constraints = _near(values, limits[:, 0] / row_sizes, limits[:, 1] / row_sizes)
 
     def all(self) -> Iterator[Stretch]:
         for quantity in self.limited:

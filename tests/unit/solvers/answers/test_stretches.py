@@ -96,3 +96,20 @@ def test_on_arcs_each_has_its_own():
 def test_without_switches_there_is_nothing_to_say():
     smooth = {**LEAST_FUEL, "functional": {"integrand": "u^2"}, "unknowns": {"x": {}, "u": {}}}
     assert solve(stated(**smooth)).stretches == ()
+
+
+def test_a_constraint_that_binds_is_named_and_its_control_is_not_singular():
+    """x' = u with u <= x and u <= 2: growth as e^t up to x = 2, at t = ln 4, then the control's own limit."""
+    problem = stated(
+        independent={"name": "t", "from": 0, "to": 3},
+        unknowns={"x": {}, "u": {"within": [0, 2]}},
+        dynamics=["x' = u"],
+        constraints=["u <= x"],
+        functional={"seek": "maximum", "endpoint": "x(3)"},
+        endpoints=["x(0) = 0.5"],
+    )
+    solution = solve(problem)
+    full = math.log(4)
+    assert [course for course, _, _ in _told(solution, "u")] == [INSIDE, UPPER]
+    ((course, start, end),) = _told(solution, "u <= x")
+    assert (course, start, end) == (UPPER, 0, pytest.approx(full, abs=1e-2))
