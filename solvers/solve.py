@@ -40,7 +40,7 @@ from solvers.problem import Continuation, Problem, Seek
 from solvers.search.at_bound import at_bound
 from solvers.search.chatter import chatter
 from solvers.search.early import sharpened_early
-from solvers.search.escape import escapes
+from solvers.search.escape import escapes, may_escape
 from solvers.search.holding import held_rightly
 from solvers.search.irreducible import name_conflicts
 from solvers.search.pursuit import go_on, pursue
@@ -351,6 +351,8 @@ def _solution(
         value_error_or_none = None if value_error_or_none is None else value_error
     diagnosis = with_feasibility(diagnosis, made)
     verdict = judge(problem.seek, made, pursuit.end)
+    if verdict in PROVED and pursuit.end is End.TIME and may_escape(pursuit):
+        verdict = Verdict.BEST_FOUND  # the bound may be one that is only approached, and nobody had time to find out
     if verdict in PROVED and (gap := lower_bound.gap(made)) is not None:  # the bound says it better than the meshes
         shown = gap * pursuit.value_size + FLOOR * abs(path.program.value_scale)
         value_error = min(value_error, shown + rounded_off)

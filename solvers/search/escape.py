@@ -42,11 +42,9 @@ def escapes(pursuit: Pursuit, deadline: Deadline) -> tuple[Finding, ...]:
     path = pursuit.paths[-1]
     program = path.program
     z = path.z / program.scale
-    size = max(abs(program.value_scale), abs(pursuit.first.value_scale) if pursuit.first else 0.0)
-    for label, index, scaled in _grown(pursuit):
+    size = _size(pursuit)
+    for label, index, scaled in _far_out(pursuit):
         side = np.sign(z[index])
-        if np.isfinite(program.upper[index] if side > 0 else program.lower[index]) or _firm(path, index, size):
-            continue
         start, bound = z.copy(), FARTHER * z[index]
         start[scaled] *= FARTHER
         lower, upper = program.lower.copy(), program.upper.copy()
@@ -86,6 +84,27 @@ def _firm(path: Trajectory, index: int, size: float) -> bool:
     return abs(moved) < NOTHING * max(1.0, way**2) or (
         moved > 0 and way**2 / (2 * moved) * abs(program.value_scale) > FIRM * size
     )
+
+
+def may_escape(pursuit: Pursuit) -> bool:
+    """Whether something has grown so far that it would have to be found out."""
+    return next(_far_out(pursuit), None) is not None
+
+
+def _far_out(pursuit: Pursuit) -> Iterator[tuple[str, int, Array]]:
+    """What has outgrown its first size on a side where no bound holds it, nor the second variation."""
+    path = pursuit.paths[-1]
+    program = path.program
+    for label, index, scaled in _grown(pursuit):
+        bound = program.upper[index] if path.z[index] > 0 else program.lower[index]
+        if not (np.isfinite(bound) or _firm(path, index, _size(pursuit))):
+            yield label, index, scaled
+
+
+def _size(pursuit: Pursuit) -> float:
+    """The size of the value, on the first mesh or this one."""
+    programs = [pursuit.paths[-1].program, *([pursuit.first] if pursuit.first else [])]
+    return max(abs(program.value_scale) for program in programs)
 
 
 def _value(pursuit: Pursuit) -> float:

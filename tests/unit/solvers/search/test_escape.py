@@ -3,10 +3,12 @@
 import pytest
 
 from solvers.deadline import in_seconds
-from solvers.search.escape import escapes
+from solvers.search.escape import escapes, may_escape
 from solvers.search.pursuit import pursue
+from solvers.search.record import End
 from solvers.solution import Verdict
-from solvers.solve import solve
+from solvers.solve import PROVED, _solution, solve
+from solvers.sweep.found import Found
 from tests.unit.solvers.problems import shape, stated
 
 FREE_TIME = {
@@ -52,3 +54,18 @@ def test_what_the_second_variation_holds_is_not_looked_for_farther_out(monkeypat
     pursuit = pursue(problem, None, in_seconds(60))
     monkeypatch.setattr("solvers.search.escape.minimise", None)
     assert escapes(pursuit, in_seconds(60)) == ()
+
+
+def test_out_of_time_a_bound_that_is_only_approached_proves_nothing():
+    """exp(-y) underflows to the zero that it is above: 0 is no least value, with or without time to find that out."""
+    problem = shape(functional={"endpoint": "exp(-y(3))"}, endpoints=["y(0) = 0"], constraints=["y'^2 >= 0"])
+    pursuit = pursue(problem, None, in_seconds(30))
+    assert may_escape(pursuit)
+    pursuit.end = End.TIME
+    told = _solution(problem, Found(pursuit, None), 0.0)
+    assert told.verdict not in PROVED
+
+
+def test_what_has_not_grown_cannot_escape():
+    problem = shape(functional={"integrand": "y'^2"}, endpoints=["y(0) = 0", "y(3) = 1"])
+    assert not may_escape(pursue(problem, None, in_seconds(30)))
