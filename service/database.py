@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import sqlite3
+import time
 from collections.abc import Iterator
 from contextlib import contextmanager
 from pathlib import Path
@@ -14,6 +15,8 @@ from sqlalchemy.engine import Connection
 from service.run import StoreError, StoreFullError
 
 _BEGIN = "BEGIN IMMEDIATE"
+_PATIENCE = 10.0
+"""Seconds for which a connection waits for the lock of another one."""
 
 
 def open_database(url: str) -> sql.Engine:
@@ -28,12 +31,12 @@ def open_database(url: str) -> sql.Engine:
             Path(path).parent.mkdir(mode=0o700, parents=True, exist_ok=True)
         except OSError as error:
             raise StoreError(f"the directory {Path(path).parent} cannot be made: {error.strerror}") from error
-    engine = sql.create_engine(url, connect_args={"check_same_thread": False, "timeout": 10.0}, paramstyle="named")
+    engine = sql.create_engine(url, connect_args={"check_same_thread": False, "timeout": _PATIENCE}, paramstyle="named")
 
     @sql.event.listens_for(engine, "connect")
     def _configure(connection: Any, _: Any) -> None:
         connection.isolation_level = None  # the driver must not begin transactions behind our back
-        connection.execute("PRAGMA journal_mode = WAL")
+        _write_ahead(connection)
         connection.execute("PRAGMA synchronous = FULL")
         connection.execute("PRAGMA foreign_keys = ON")
 
@@ -44,6 +47,19 @@ def open_database(url: str) -> sql.Engine:
             connection.exec_driver_sql(_BEGIN)
 
     return engine
+
+
+def _write_ahead(connection: sqlite3.Connection) -> None:
+    """Keep a write-ahead log; only this switch does not wait by itself for another connection that makes it too."""
+    last = time.monotonic() + _PATIENCE
+    while True:
+        try:
+            connection.execute("PRAGMA journal_mode = WAL")
+            return
+        except sqlite3.OperationalError:
+            if time.monotonic() > last:
+                raise
+            time.sleep(0.01)
 
 
 def text_of(engine: sql.Engine, statement: sql.Executable, *columns: str) -> str:
