@@ -105,7 +105,7 @@ class _Follower:
         except SingularError:
             first = None
         way = float(np.sign(self.to - self.began))
-        here = self._minimised(self.path, self.began, way) if first is None else _turned(first[0], way)
+        here = self._begun_beside(way) if first is None else _turned(first[0], way)
         if here is None:
             return "The branch could not be begun: the solution is singular already, or a limit just begins to bind."
         step = FIRST_STEP
@@ -134,6 +134,14 @@ class _Follower:
                 return "Stopped."
             step = min(step * (1.5 if count <= QUICK else 1.0 if count <= QUICK + 2 else 0.6), LONGEST)
         return self._unfinished(here)
+
+    def _begun_beside(self, way: float) -> _At | None:
+        """The first point minimised anew; where a limit just begins to bind at a point there, a little further on."""
+        for share in (0.0, *FURTHER):
+            found = self._minimised(self.path, self.began + way * share * self.size, way)
+            if found is not None:
+                return found
+        return None
 
     def _unfinished(self, here: _At) -> str:
         """That the branch may go on, and how to follow it on."""

@@ -178,7 +178,10 @@ class Observation:
 
 @dataclass(frozen=True, slots=True)
 class Held:
-    """A free quantity that stays on its lower (side -1) or upper (side 1) limit along the stretch after a place."""
+    """A free quantity that stays on its lower (side -1) or upper (side 1) limit along the stretch after a place.
+
+    Or a pointwise constraint: then `name` is its label, `order` its rank among all that holds at every point.
+    """
 
     stretch: int
     name: str

@@ -66,6 +66,7 @@ from solvers.starts.extremals import solve_from_starts
 from solvers.starts.together import IN_TURN, Together
 from solvers.sweep.found import Found, Tools
 from solvers.sweep.points import sweep
+from solvers.sweep.repair import without_contacts
 from solvers.tables.usage import table_notes
 from solvers.transcription.functions import SMOOTHING, rounded_functions
 from solvers.transcription.lowering import primed
@@ -204,7 +205,7 @@ def _with_branch(
     def value(found_value: float) -> float:
         return found_value if found.gauged is None else found.gauged.value(found_value)
 
-    path = unambiguous(found.pursuit.paths[-1])
+    path = unambiguous(without_contacts(found.pursuit, deadline))
     branch = follow(path, continuation.constant, continuation.to, deadline, stop)
     points, folds = (tuple(replace(p, value=value(p.value)) for p in some) for some in (branch.points, branch.folds))
     times = {**solution.times, "continuation": time.perf_counter() - began}

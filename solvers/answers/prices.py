@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 
 from solvers.problem import Condition, Seek
 from solvers.solution import Price
-from solvers.transcription.limits import constants_of, interval_of
+from solvers.transcription.limits import constants_of, contacts, interval_of
 from solvers.transcription.trajectory import Trajectory
 
 Array = NDArray[np.float64]
@@ -69,12 +69,15 @@ def _limits(path: Trajectory, multipliers: Array) -> Iterator[Price]:
     point, where, problem = compiled.point, program.layout, compiled.lowered.problem
     lines, worth = len(compiled.lowered.equalities), TRACE * abs(program.value_scale)
     rows = path.row_multipliers[program.rows.pointwise : program.rows.rims].reshape(-1, point.constraints or 1)
+    touched = contacts(compiled, where, problem.held)
     for k, condition in enumerate(compiled.pointwise[lines:], start=lines):
         if condition.equality:
             yield Price(condition.label, condition.pointer, float(rows[:, k].sum()))
         else:
-            size = program.row_scale[program.rows.pointwise + k]
-            yield from _sides((condition.label,) * 2, (condition.pointer,) * 2, rows[:, k], worth / size)
+            least, sides = worth / program.row_scale[program.rows.pointwise + k], touched[:, k]
+            upper = float(np.where(sides > 0, rows[:, k], np.maximum(rows[:, k], 0.0))[sides >= 0].sum())
+            lower = float(np.where(sides < 0, rows[:, k], np.minimum(rows[:, k], 0.0))[sides <= 0].sum())
+            yield from _told((condition.label,) * 2, (condition.pointer,) * 2, upper, lower, least)
     held = _held(path)
     free = np.where(program.lower == program.upper, 0.0, multipliers)
     above = np.where(held > 0, multipliers, np.maximum(free, 0.0))
@@ -111,6 +114,8 @@ def _held(path: Trajectory) -> NDArray[np.int8]:
     labels = [place.label for place in lowered.problem.places]
     for hold in lowered.problem.held:
         quantity, on = (hold.name, hold.order), where.stretch == hold.stretch
+        if compiled.rank_of(hold) is not None:
+            continue
         if quantity in lowered.controls:
             held[where.controls[on, lowered.controls.index(quantity)]] = hold.side
         else:
@@ -140,12 +145,6 @@ def _attributed(
     above = min(limits, key=lambda limit: limit[3])
     below = max(limits, key=lambda limit: limit[2])
     yield from _told((above[0], below[0]), (above[1], below[1]), upper, lower, least)
-
-
-def _sides(labels: tuple[str, str], pointers: tuple[str, str], multipliers: Array, least: float) -> Iterator[Price]:
-    """Prices of an upper and a lower limit, told apart by the sign."""
-    upper, lower = float(multipliers[multipliers > 0].sum()), float(multipliers[multipliers < 0].sum())
-    yield from _told(labels, pointers, upper, lower, least)
 
 
 def _told(

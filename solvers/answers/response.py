@@ -22,6 +22,7 @@ from numpy.typing import NDArray
 from solvers.answers.sensitivity import Shift, end_weights, point_weights
 from solvers.curve import Curve
 from solvers.minimise.optimality import Optimality
+from solvers.search.structure import smooth_contacts
 from solvers.solution import Change
 from solvers.transcription.evaluation import end_inputs, point_inputs
 from solvers.transcription.layout import calm_entries
@@ -53,6 +54,7 @@ class Response:
         rows = path.row_multipliers * program.row_scale / size
         self._hessian, self._jacobian = numbers.hessian(z, 1.0, rows), numbers.jacobian(z)
         self.sides = _sides(path.bound_multipliers * program.scale / size, z, program.lower, program.upper)
+        self.sides[program.layout.parameters[smooth_contacts(path)]] = 1  # where they lie is of no account
         self.row_sides = _sides(rows, numbers.constraints(z), program.row_lower, program.row_upper)
         self.free, active = np.flatnonzero(self.sides == 0), np.flatnonzero(self.row_sides)
         says = numbers.jacobian_pattern.times((self.sides == 0).astype(float), np.abs(self._jacobian)) > 0
@@ -136,6 +138,7 @@ class Response:
         program = self.path.program
         moved = np.where(self.sides < 0, shift.lower, shift.upper) / program.scale
         moved[self.free] = 0.0
+        moved[program.layout.parameters[smooth_contacts(self.path)]] = 0.0
         moved[program.layout.places[~np.isin(program.layout.places, self.free)]] = 0.0
         return np.asarray(moved)
 

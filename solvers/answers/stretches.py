@@ -69,6 +69,10 @@ class _Reader:
         limits = np.array([interval_of(c, constants) for c in self.compiled.pointwise]).reshape(-1, 2)
         self.equal = np.array([c.equality for c in self.compiled.pointwise], dtype=bool)
         self.constraints = _near(values, limits[:, 0] / row_sizes, limits[:, 1] / row_sizes)
+        known = [(rank, h) for h in self.problem.held if (rank := self.compiled.rank_of(h)) is not None]
+        self.constraints[:, [rank for rank, _ in known]] = 0
+        for rank, held in known:
+            self.constraints[self.stretch == held.stretch, rank] = held.side
 
     def all(self) -> Iterator[Stretch]:
         for quantity in self.limited:
@@ -117,7 +121,7 @@ class _Reader:
                 occurs[row - n, column - n] = True
         free = self.controls == 0
         for held in self.problem.held:
-            for taken in determined_by((held.name, held.order), self.compiled):
+            for taken in determined_by(held, self.compiled):
                 free[self.stretch == held.stretch, lowered.controls.index(taken)] = False
         binding = ((self.constraints != 0) | self.equal) & (free.astype(int) @ occurs.T.astype(int) > 0)
         involved = free & (binding.astype(int) @ occurs.astype(int) > 0)

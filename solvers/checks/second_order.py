@@ -13,6 +13,7 @@ from solvers.checks.scattered import Scattered, both_triangles, scattered
 from solvers.checks.variation import second_variation
 from solvers.search.signals import SWITCH
 from solvers.transcription.layout import Layout
+from solvers.transcription.limits import contacts
 from solvers.transcription.trajectory import Trajectory
 
 Array = NDArray[np.float64]
@@ -72,6 +73,8 @@ def second_order(sampler: Sampler) -> Second:
     pushed = resting & (np.abs(bounds) > PUSHED * share * measure)
     pushed[where.controls] |= _pushed_throughout(sampler, resting, bounds, PUSHED * share * weight)
     equalities = program.row_lower == program.row_upper
+    touched = contacts(program.compiled, where, sampler.problem.held) != 0
+    equalities[rows.pointwise : rows.rims] &= ~touched.ravel()  # arcs on a constraint: not given either
     at_limit = ~equalities & ((values - program.row_lower <= AT_BOUND) | (program.row_upper - values <= AT_BOUND))
     row_measure = np.ones(rows.count)
     if sampler.point.constraints:

@@ -242,21 +242,29 @@ def _multipliers(sampler: Sampler) -> list[Finding]:
         constants = constants_of(sampler.compiled)
         for k, condition in enumerate(sampler.compiled.pointwise[lines:]):
             if not condition.equality:
-                figure = complementarity(rows[:, lines + k], values[:, k], *interval_of(condition, constants), sizes[k])
+                held = {h.stretch for h in sampler.problem.held if sampler.compiled.rank_of(h) == lines + k}
+                alone = not sampler.holds_controls(n + lines + k)
+                pushes = _even(sampler, rows[:, lines + k], held if alone else set())
+                figure = complementarity(pushes, values[:, k], *interval_of(condition, constants), sizes[k])
                 findings.append((figure / sampler.value_size, place, condition.label))
     return [(figure, at, subject, f"The multiplier of '{subject}' times the distance from the limit "
              f"is {figure:.1e} of the functional.") for figure, at, subject in findings]  # fmt: skip
 
 
 def _spread(sampler: Sampler, state: int) -> Array:
-    """The multipliers of a state's bounds at the points; where the state is held on one, the mean of each interval.
+    """The multipliers of a state's bounds at the points; where the state is held on one, the mean of each interval."""
+    quantity = sampler.compiled.lowered.states[state]
+    multipliers = sampler.path.bound_multipliers[sampler.path.program.layout.inner[:, state]]
+    return _even(sampler, multipliers, {h.stretch for h in sampler.problem.held if (h.name, h.order) == quantity})
+
+
+def _even(sampler: Sampler, multipliers: Array, held: set[int]) -> Array:
+    """Multipliers of a limit on states at the points; along the stretches where it is held, the mean of each interval.
 
     There the minimiser sees equalities, whose multipliers may alternate from point to point although nothing pulls.
     What a place puts on the state beside the arc stays apart.
     """
-    path, where = sampler.path, sampler.path.program.layout
-    multipliers = path.bound_multipliers[where.inner[:, state]].copy()
-    held = {h.stretch for h in sampler.problem.held if (h.name, h.order) == sampler.compiled.lowered.states[state]}
+    where, multipliers = sampler.path.program.layout, multipliers.copy()
     last = np.append(np.diff(sampler.stretch) > 0, True)
     for k in np.flatnonzero(np.isin(sampler.stretch, list(held))):
         inside = slice(where.first[k], where.first[k + 1] - int(last[k]))

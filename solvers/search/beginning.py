@@ -19,7 +19,7 @@ from solvers.starts.guess import first_guess, guesses
 from solvers.transcription.layout import layout
 from solvers.transcription.mesh import Mesh
 from solvers.transcription.program import Program
-from solvers.transcription.trajectory import Trajectory, related
+from solvers.transcription.trajectory import Trajectory, related_with_multipliers
 
 LOST = (Outcome.FAILED, Outcome.ITERATIONS, Outcome.INFEASIBLE)
 """Ends of the minimiser that a wrong size may bring about."""
@@ -100,9 +100,18 @@ def begin_from(
     in a single attempt."""
     mesh = mesh or first_mesh(len(pursuit.problem.places) - 1)
     where = layout(pursuit.compiled, mesh)
-    z = related(start, pursuit.compiled, mesh, where)
+    carried = related_with_multipliers(start, pursuit.compiled, mesh, where)
+    z = carried.z
     program = make_program(pursuit.compiled, mesh, where, z)
     z = z / program.scale
+    if any(pursuit.compiled.rank_of(held) is not None for held in pursuit.problem.held):
+        if program.overdetermined:
+            return None
+        warm = carried.onto(program)  # along a constraint multipliers are half of what is known
+        room = {"ipopt.max_iter": iterations or FEW_ITERATIONS}
+        near = minimise_.nearby(program, warm) or minimise_(program, warm, room)
+        if near.outcome in SOLVED or iterations:
+            return (program, near) if near.outcome in SOLVED else None
     settings = (FALLING, ADAPTING) if loose(pursuit.compiled) else (ADAPTING, FALLING)
     for options, most in settings[:1] if iterations else settings:
         minimum = minimise_(program, Start(z), options | {"ipopt.max_iter": iterations or most})

@@ -94,7 +94,7 @@ def _points_between(path: Trajectory, low: float, high: float) -> int:
 def _surely(changed: Problem, base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit | None:
     """The problem with switches solved, where what comes of it is beyond doubt."""
     path = base.paths[-1]
-    sharp = pursue(changed, watch, deadline, meshes=1, start=path, mesh=mesh_between(changed), iterations=HASTY)
+    sharp = pursue(changed, watch, deadline, meshes=1, start=path, mesh=mesh_between(changed, path), iterations=HASTY)
     if not sharp.solved or not _right(sharp, base):
         return None
     go_on(sharp, watch, deadline, 1)

@@ -13,6 +13,7 @@ from solvers.search.structure import Release, shrinking
 from solvers.transcription.trajectory import Trajectory
 
 Array = NDArray[np.float64]
+Flags = NDArray[np.bool_]
 Indices = NDArray[np.int64]
 
 WRONG = 0.2
@@ -41,8 +42,8 @@ def surely_held_rightly(path: Trajectory) -> bool:
 def wrongly_held(path: Trajectory) -> list[Held]:
     """The held limits that it would be better to leave: the slope of the Lagrangian has the wrong sign.
 
-    For a control at any point of its arc, but for what discretisation blurs near its ends; for a state, whose
-    multiplier may be spread in many ways, in the sum.
+    For a control or a pointwise constraint anywhere on its arc, but for what discretisation blurs near its ends; for a
+    state, whose multiplier may be spread in many ways, in the sum.
     """
     return [
         held
@@ -52,9 +53,9 @@ def wrongly_held(path: Trajectory) -> list[Held]:
 
 
 def _slopes(path: Trajectory) -> Iterator[tuple[Held, Array, bool]]:
-    """What is held, how much the value loses along it by leaving its limit, and whether it is a control.
+    """What is held, how much the value loses along it by leaving its limit, and whether that counts at each place.
 
-    By the measure of each point for a control, in all for a state.
+    By the measure of each point for a control, and for a pointwise constraint; in all for a state.
     """
     program = path.program
     where, problem = program.layout, program.compiled.lowered.problem
@@ -66,11 +67,28 @@ def _slopes(path: Trajectory) -> Iterator[tuple[Held, Array, bool]]:
         inside = where.stretch == held.stretch
         if any(signal.quantity != quantity and signal.labels[inside].all() for signal in resting):
             continue  # a state rests on its limit besides: the multipliers are not unique
-        if quantity in lowered.controls:
+        rank = program.compiled.rank_of(held)
+        if rank is not None:
+            yield held, held.side * _pushes(path, inside, rank), True
+        elif quantity in lowered.controls:
             outward = -held.side * slopes[where.controls[inside, lowered.controls.index(quantity)]]
             yield held, outward / where.measures[inside], True
         else:
             yield held, -held.side * slopes[where.inner[inside, lowered.states.index(quantity)]], False
+
+
+def _pushes(path: Trajectory, inside: Flags, rank: int) -> Array:
+    """The multipliers of a pointwise constraint along an arc, by their measure; on states alone the mean of each
+    interval, as they may alternate from point to point."""
+    program, where = path.program, path.program.layout
+    count = program.compiled.point.constraints
+    rows = path.row_multipliers[program.rows.pointwise : program.rows.rims].reshape(-1, count)
+    pushes: Array = rows[inside, rank]
+    measures: Array = (where.measures * where.lengths(path.places))[inside]
+    if program.compiled.reached_by(program.compiled.point.states + rank)[0] > 0:
+        owner = np.repeat(np.arange(len(where.first) - 1), np.diff(where.first))[inside]
+        pushes, measures = (np.bincount(owner - owner[0], values).astype(float) for values in (pushes, measures))
+    return np.asarray(pushes / measures) / abs(program.value_scale)
 
 
 def released(path: Trajectory, wrong: Sequence[Held]) -> list[Release]:

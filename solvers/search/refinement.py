@@ -16,6 +16,7 @@ import numpy as np
 from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
+from solvers.search.contacts import contacts
 from solvers.series import basis
 from solvers.transcription.collocation import Family
 from solvers.transcription.evaluation import mapped
@@ -40,6 +41,10 @@ NARROWEST = 1e-11
 """Least width of an interval, relative to the whole."""
 END_DEGREE = 6
 """Least degree beside such a cut: beyond it the curve is smooth."""
+SLIVER = 0.3
+"""How narrow an interval is, relative to its neighbour, that was cut off that for the trouble at its end ..."""
+GOOD = 0.1
+"""... and its error, relative to that neighbour's, where the trouble was elsewhere."""
 END_CUT = 0.12
 """Where an interval is cut whose trouble sits at one of its ends."""
 
@@ -187,13 +192,15 @@ def refine(path: Trajectory, found: Estimate, tolerance: float) -> Mesh:
     widths = np.diff(path.breaks) / (path.breaks[-1] - path.breaks[0])
     falls = _falls(found)
     smooth = smooth_all_along(found, tolerance)
+    along = any(contact.state for contact in contacts(path))  # there the curve bends wherever its limit does
     pieces: list[Interval] = []
     for k, old in enumerate(mesh.intervals):
         if found.errors[k] <= tolerance:
             pieces.append(old)
         else:
             missing = float(np.log10(found.errors[k] / tolerance))
-            pieces.extend(_replace(old, missing, falls[k], found.bends[k], float(widths[k]), smooth))
+            good = _good_beside(mesh, found.errors, k) if along else (False, False)
+            pieces.extend(_replace(old, missing, falls[k], found.bends[k], float(widths[k]), smooth, good))
     return Mesh(tuple(pieces))
 
 
@@ -206,8 +213,19 @@ def _falls(found: Estimate) -> list[float]:
     return [max(_fall(shape), 1e-3) for shape in found.shapes]
 
 
+def _good_beside(mesh: Mesh, errors: Array, k: int) -> tuple[bool, bool]:
+    """Whether an interval has a narrow neighbour before, and after it, that is good: no trouble sits at that end."""
+
+    def good(j: int) -> bool:
+        if not 0 <= j < len(mesh.intervals) or mesh.stretch[j] != mesh.stretch[k]:
+            return False
+        return bool(mesh.widths[j] < SLIVER * mesh.widths[k] and errors[j] < GOOD * errors[k])
+
+    return good(k - 1), good(k + 1)
+
+
 def _replace(
-    old: Interval, missing: float, fall: float, bends: Array, width: float, smooth: bool
+    old: Interval, missing: float, fall: float, bends: Array, width: float, smooth: bool, good: tuple[bool, bool]
 ) -> Iterator[Interval]:
     """One interval by better ones, to gain so many powers of ten."""
     family, degree = old.scheme.family, old.scheme.degree
@@ -225,7 +243,9 @@ def _replace(
         degree = min(max(degree, needed), HIGHEST_DEGREE)
     else:
         bend = _bend(bends)
-        if bend < END_CUT:
+        if (good[0] and bend < END_CUT) or (good[1] and bend > 1 - END_CUT):
+            cuts = [0.5]
+        elif bend < END_CUT:
             cuts = [END_CUT]
         elif bend > 1 - END_CUT:
             cuts = [1 - END_CUT]

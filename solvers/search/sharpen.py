@@ -3,6 +3,10 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from itertools import pairwise
+
+import numpy as np
+from numpy.typing import NDArray
 
 from solvers.deadline import Deadline
 from solvers.problem import Problem
@@ -11,13 +15,23 @@ from solvers.search.holding import released, shrunk, wrongly_held
 from solvers.search.joined import joined
 from solvers.search.pursuit import go_on, pursue
 from solvers.search.record import End, Pursuit
-from solvers.search.signals import Switch, signals, switches
-from solvers.search.structure import Release, at_the_edge, present_switches, shrinking, softened, with_switches
+from solvers.search.signals import Switch, limited, switches
+from solvers.search.structure import (
+    Release,
+    at_the_edge,
+    first_places,
+    present_switches,
+    shrinking,
+    softened,
+    with_switches,
+)
 from solvers.solution import Watch
 from solvers.transcription.collocation import Family
 from solvers.transcription.functions import linear_controls
 from solvers.transcription.mesh import Interval, Mesh, interval
 from solvers.transcription.trajectory import Trajectory
+
+Array = NDArray[np.float64]
 
 SOFTNESS = (1e-3, 1e-5)
 """Weights of the softened problems that are tried in turn."""
@@ -27,6 +41,12 @@ SLOW = 0.25
 """How much of the error one more mesh must leave at the most where the structure is right."""
 MOST_CHATTER = 5
 """So many switches are added where a control chatters: each counts about a thousandth of the one before."""
+LEAST_DEGREE = 6
+"""The least degree of intervals that are taken over."""
+CROWDED = 0.001
+"""How near to each other, relative to an arc along a constraint, breaks crowd together."""
+HELPS = 0.1
+"""How much of the error must be left at the most where it came from the ends of arcs along constraints."""
 AGREEMENT = 1e-2
 """How far the value may move when the structure is made exact, relative to its size."""
 
@@ -34,7 +54,7 @@ AGREEMENT = 1e-2
 def sharpen(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit | None:
     """A pursuit of the same problem with its switches as unknowns; None where there are none or that leads nowhere."""
     path = base.paths[-1]
-    if not signals(path):
+    if not limited(path):
         return None
     found = []
     for seen in _calmed(base, watch, deadline):
@@ -97,14 +117,14 @@ def with_structure(base: Pursuit, path: Trajectory, watch: Watch | None, deadlin
         if same and (again or not at_the_edge(path)):
             break
         again, one = same, None
-        now = pursue(changed, watch, deadline, meshes=2, start=path, mesh=mesh_between(changed))
+        now = pursue(changed, watch, deadline, meshes=2, start=path, mesh=mesh_between(changed, path))
         if not now.solved:
             break
         path = now.paths[-1]
         seen = changed
         if at_the_edge(path):
             continue
-        if not agrees(now, base):
+        if not agrees(now, base) or not _helps(now, base):
             break
         wrong = wrongly_held(path)
         if wrong:
@@ -118,6 +138,13 @@ def with_structure(base: Pursuit, path: Trajectory, watch: Watch | None, deadlin
     if pursuit is None or pursuit.end is End.CONVERGED:
         return pursuit
     return go_on(pursuit, watch, deadline, 4)
+
+
+def _helps(now: Pursuit, base: Pursuit) -> bool:
+    """Whether curves along constraints are better known than by the plain meshes, where they bend by themselves too."""
+    if all(now.compiled.rank_of(held) is None for held in now.problem.held):
+        return True
+    return (now.steps[-1].error or 0.0) <= HELPS * (base.steps[-1].error or 0.0)
 
 
 def slow(pursuit: Pursuit) -> bool:
@@ -149,7 +176,7 @@ def _with_more_switches(base: Pursuit, sharp: Pursuit, watch: Watch | None, dead
         changed = one_more(path)
         if changed is None:
             break
-        pursuit = pursue(changed, watch, deadline, meshes=2, start=path, mesh=mesh_between(changed))
+        pursuit = pursue(changed, watch, deadline, meshes=2, start=path, mesh=mesh_between(changed, path))
         if not pursuit.solved or at_the_edge(pursuit.paths[-1]) or not agrees(pursuit, base):
             break
         if pursuit.value_error > error:
@@ -158,8 +185,14 @@ def _with_more_switches(base: Pursuit, sharp: Pursuit, watch: Watch | None, dead
     return last if last.shown or last.value_error <= sharp.value_error else sharp
 
 
-def mesh_between(problem: Problem) -> Mesh:
-    """Few intervals where everything is held, more where a control is free."""
+def mesh_between(problem: Problem, path: Trajectory) -> Mesh:
+    """Few intervals where everything is held, more where a control is free; with arcs along constraints a path's own.
+
+    What bends there bends wherever its limit does, and the path's mesh knows about that.
+    """
+    labels = {condition.label for condition in problem.constraints}
+    if any(h.name in labels for h in problem.held):
+        return _taken_over(problem, path)
     pieces: list[Interval] = []
     calm = {c.stretch for c in problem.calm}
     held = {h.stretch for h in problem.held} - calm
@@ -170,6 +203,28 @@ def mesh_between(problem: Problem) -> Mesh:
             family = Family.GAUSS if stretch == last and k == count - 1 else Family.RADAU
             pieces.append(interval(stretch, k / count, (k + 1) / count, family, degree))
     return Mesh(tuple(pieces))
+
+
+def _taken_over(problem: Problem, path: Trajectory) -> Mesh:
+    """The mesh of a path, cut anew by the places of a problem."""
+    pieces: list[Interval] = []
+    places, degrees = first_places(problem, path), path.program.mesh.counts
+    for stretch, (start, end) in enumerate(pairwise(places)):
+        for left, right in pairwise(_edges_between(path, start, end)):
+            owner = np.searchsorted(path.breaks[1:-1], start + (left + right) / 2 * (end - start))
+            family = Family.GAUSS if stretch == len(places) - 2 and right == 1 else Family.RADAU
+            degree = max(LEAST_DEGREE, int(degrees[owner]))
+            pieces.append(interval(stretch, float(left), float(right), family, degree))
+    return Mesh(tuple(pieces))
+
+
+def _edges_between(path: Trajectory, start: float, end: float) -> Array:
+    """The breaks of a mesh between two places as shares of the way, without those that crowd together."""
+    edges = [0.0]
+    for share in (path.breaks - start) / (end - start):
+        if edges[-1] + CROWDED < share < 1 - CROWDED:
+            edges.append(float(share))
+    return np.array([*edges, 1.0]) if len(edges) > 3 else np.linspace(0.0, 1.0, 5)
 
 
 def agrees(found: Pursuit, base: Pursuit) -> bool:

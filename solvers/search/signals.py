@@ -9,6 +9,7 @@ from itertools import pairwise
 import numpy as np
 from numpy.typing import NDArray
 
+from solvers.search.contacts import Contact, contacts
 from solvers.transcription.limits import quantity_bounds
 from solvers.transcription.lowering import Quantity
 from solvers.transcription.trajectory import Trajectory
@@ -78,12 +79,17 @@ def signals(path: Trajectory) -> list[Signal]:
     return found
 
 
+def limited(path: Trajectory) -> list[Signal | Contact]:
+    """All that lies on a limit somewhere: controls and constraints on them, then states and constraints on these."""
+    return sorted([*signals(path), *contacts(path)], key=lambda signal: signal.state)
+
+
 def switches(path: Trajectory, linear: Sequence[Quantity]) -> list[Switch]:
     """The switches of a solved mesh, in order; none where there are too many to be a structure.
 
     `linear` are the controls that act linearly in the problem itself, of which this may be a softened form.
     """
-    found = [switch for signal in signals(path) for switch in _changes(path, signal, linear)]
+    found = [switch for signal in limited(path) for switch in _changes(path, signal, linear)]
     merged = _merged(sorted(found, key=lambda switch: switch.place), path)
     return merged if len(merged) <= MOST_SWITCHES else []
 
@@ -108,7 +114,7 @@ def jumps_at_breaks(path: Trajectory) -> bool:
     return bool((leaps > LEAP * np.abs(path.controls[:, limited]).max(axis=0, initial=1e-300)).any())
 
 
-def _changes(path: Trajectory, signal: Signal, linear: Sequence[Quantity]) -> list[Switch]:
+def _changes(path: Trajectory, signal: Signal | Contact, linear: Sequence[Quantity]) -> list[Switch]:
     """Places where the label of a signal changes.
 
     A short passage of a control between two limits is one switch where it acts linearly; else it may not jump, and the
@@ -159,7 +165,7 @@ def _runs(labels: Indices) -> list[tuple[int, int]]:
     return [(int(first), int(last)) for first, last in zip(starts, ends, strict=True)]
 
 
-def _clean_jump(path: Trajectory, signal: Signal, inside: slice, low: float, high: float, side: int) -> float:
+def _clean_jump(path: Trajectory, signal: Signal | Contact, inside: slice, low: float, high: float, side: int) -> float:
     """Where a clean jump from one limit to the other has the same integral between `low` and `high`."""
     where = path.program.layout
     total = float((where.measures * where.lengths(path.places))[inside] @ signal.values[inside])

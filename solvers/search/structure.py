@@ -16,16 +16,19 @@ from numpy.typing import NDArray
 
 from solvers.formula.nodes import Name, Node, Number, Power, Product, Sum
 from solvers.problem import Calm, Held, Parameter, Place, Problem, Touch
-from solvers.search.signals import SWITCH, Switch, signals
+from solvers.search.contacts import well_begun
+from solvers.search.signals import SWITCH, Signal, Switch, limited, signals
 from solvers.transcription.functions import Compiled
 from solvers.transcription.lowering import Quantity
-from solvers.transcription.trajectory import Trajectory
+from solvers.transcription.trajectory import Trajectory, sizes_of
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]
 
 EDGE = 1e-4
 """How near to the end of its room, relative to the room, a switch counts as at its edge."""
+SMOOTH = 1e-2
+"""Jump of a control, relative to its size, up to which it goes on smoothly."""
 COLLAPSED = 3e-3
 """Width, relative to the whole, of a stretch that is about to vanish."""
 FREE = 0.9
@@ -134,6 +137,16 @@ def _own_places(problem: Problem, path: Trajectory) -> list[Spot]:
     return list(zip(values, problem.places, strict=True))
 
 
+def first_places(problem: Problem, path: Trajectory) -> list[float]:
+    """Where the places of a problem lie at first that has switches read off a path besides its own places."""
+    known = {
+        place.label: at for place, at in zip(path.program.compiled.lowered.problem.places, path.places, strict=True)
+    }
+    known |= {parameter.name: parameter.guess or 0.0 for parameter in problem.parameters
+              if parameter.name.startswith(SWITCH + " ")}  # fmt: skip
+    return [float(known[place.label]) for place in problem.places]
+
+
 def present_switches(path: Trajectory) -> list[Switch]:
     """The switches that are places of a path already, with what is held otherwise on both sides or jumps there."""
     problem, where = path.program.compiled.lowered.problem, path.program.layout
@@ -150,6 +163,27 @@ def present_switches(path: Trajectory) -> list[Switch]:
         names |= {name for name, labels in labelled if labels[after - 1] * labels[after] == -1}
         found.append(Switch(at, at, at, touching, frozenset(names)))
     return found
+
+
+def smooth_contacts(path: Trajectory) -> list[int]:
+    """The places, by their rank among the parameters, at which an arc along a constraint meets one beside it smoothly.
+
+    No control jumps there: moving such a place alone changes neither curve nor value to second order.
+    """
+    compiled, where = path.program.compiled, path.program.layout
+    problem = compiled.lowered.problem
+    names = [parameter.name for parameter in problem.parameters]
+    labels = {condition.label for condition in compiled.pointwise}
+    before, after = path.control_modes.sum(axis=1), path.control_modes.copy()
+    after[:, 1::2] *= -1.0
+    jumps = np.abs(after.sum(axis=1)[1:] - before[:-1]) / sizes_of(path)[1]
+    return [
+        names.index(place.label)
+        for index, place in enumerate(problem.places)
+        if place.label.startswith(SWITCH + " ")
+        and {name for name, _, _ in on_limits(problem.held, index - 1) ^ on_limits(problem.held, index)} & labels
+        and jumps[where.at_place[index] - 1].max(initial=0.0) <= SMOOTH
+    ]
 
 
 def at_the_edge(path: Trajectory) -> bool:
@@ -182,9 +216,11 @@ def on_limits(held: tuple[Held, ...], stretch: int) -> set[tuple[str, int, int]]
 def _held(path: Trajectory, places: Array, loose: Sequence[Release]) -> tuple[tuple[Held, ...], tuple[Held, ...]]:
     """What stays on a limit along which stretch, and what rests there besides because of that.
 
-    Never more is held than there are controls, controls before states; states beyond that follow from the dynamics.
+    Never more is held than there are controls, these and constraints on them before states; what rests on a limit
+    beyond that follows from the dynamics.
     """
     room = len(path.program.compiled.lowered.controls)
+    on_limit = limited(path)
     found: list[Held] = []
     implied: list[Held] = []
     for stretch, (start, end) in enumerate(pairwise(places)):
@@ -192,10 +228,11 @@ def _held(path: Trajectory, places: Array, loose: Sequence[Release]) -> tuple[tu
         inside = (path.points > start + margin) & (path.points < end - margin)
         here = [
             Held(stretch, *signal.quantity, side)
-            for signal in signals(path)
+            for signal in on_limit
             for side in (-1, 1)
             if inside.any()
             and np.mean(signal.labels[inside] == side) > 0.8
+            and (isinstance(signal, Signal) or well_begun(path, signal, start, end))
             and not any(signal.quantity == q and low < (start + end) / 2 < high for q, low, high in loose)
         ]
         most = room if len({held.name for held in here}) > 1 else len(here)
@@ -208,29 +245,20 @@ def _calm(linear: list[Quantity], stretches: int, held: tuple[Held, ...], compil
     """The linear controls along the stretches where nothing holds them: they run singular there."""
     found = []
     for stretch in range(stretches):
-        taken = {q for h in held if h.stretch == stretch for q in determined_by((h.name, h.order), compiled)}
+        taken = {q for h in held if h.stretch == stretch for q in determined_by(h, compiled)}
         found += [Calm(stretch, *quantity) for quantity in linear if quantity not in taken]
     return tuple(found)
 
 
-def determined_by(held: Quantity, compiled: Compiled) -> set[Quantity]:
-    """The controls that are no longer free where a quantity is held: itself, or those that first move a held state.
+def determined_by(held: Held, compiled: Compiled) -> set[Quantity]:
+    """The controls that are no longer free where something is held: itself, or those that first move it.
 
-    A state on a limit has all derivatives zero; the first of them in which controls appear determines these
-    (Bryson, Denham, Dreyfus, 1963, on the order of a constraint on states; from memory).
+    What stays on a limit has all derivatives zero; the first of them in which controls appear determines these.
     """
-    lowered, n = compiled.lowered, compiled.point.states
-    if held in lowered.controls:
-        return {held}
-    reached = {lowered.states.index(held)}
-    for _ in range(n):
-        columns = {column for row, column in zip(compiled.point.jacobian_rows, compiled.point.jacobian_columns,
-                                                 strict=True) if row in reached}  # fmt: skip
-        controls = {lowered.controls[c - n] for c in columns if n <= c < n + len(lowered.controls)}
-        if controls or columns <= reached:
-            return controls
-        reached = {column for column in columns if column < n}
-    return set()
+    lowered, quantity, rank = compiled.lowered, (held.name, held.order), compiled.rank_of(held)
+    if quantity in lowered.controls:
+        return {quantity}
+    return compiled.reached_by(lowered.states.index(quantity) if rank is None else compiled.point.states + rank)[1]
 
 
 def softened(path: Trajectory, chosen: list[int], softness: float) -> Problem:

@@ -18,6 +18,7 @@ from solvers.search.pursuit import pursue
 from solvers.search.record import End, Pursuit
 from solvers.search.sharpen import sharpen, with_structure
 from solvers.search.signals import SWITCH
+from solvers.search.structure import smooth_contacts
 from solvers.transcription.functions import compile_problem
 from solvers.transcription.lowering import lower
 from solvers.transcription.mesh import Mesh, interval
@@ -47,6 +48,19 @@ def plainly(form: Problem, constants: Problem) -> Problem:
     parameters = tuple(p for p in form.parameters if not p.name.startswith(SWITCH + " "))
     return replace(form, places=tuple(own), parameters=parameters, held=(), implied=(), calm=(), touches=(),
                    constants=constants.constants)  # fmt: skip
+
+
+def without_contacts(pursuit: Pursuit, deadline: Deadline) -> Trajectory:
+    """The last path of a pursuit; where arcs along constraints begin and end smoothly, one without them as unknowns.
+
+    Where they do is of no account for one solution, so nothing says how that moves along a branch.  The mesh is another
+    one: a point just where a limit begins to bind would be no place to begin.
+    """
+    path = pursuit.paths[-1]
+    if not smooth_contacts(path):
+        return path
+    plain = pursue(plainly(pursuit.problem, pursuit.problem), None, deadline)
+    return plain.paths[-1] if plain.solved else path
 
 
 def _good(pursuit: Pursuit) -> bool:

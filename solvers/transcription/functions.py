@@ -18,7 +18,7 @@ from solvers.formula.evaluate import evaluate
 from solvers.formula.nodes import At, Call, Name, Node, Number, Sum, children, walk, with_children
 from solvers.formula.printer import text
 from solvers.observations import terminal
-from solvers.problem import Condition, Place, Problem
+from solvers.problem import Condition, Held, Place, Problem
 from solvers.tables.lookups import Lookups
 from solvers.transcription.derivatives import Differentiated
 from solvers.transcription.limits import number, quantity_bounds
@@ -113,6 +113,27 @@ class Compiled:
     fixed: tuple[tuple[int, int, Condition], ...]  # (state, place, condition): conditions on a single value
     rims: tuple[tuple[int, int, Condition], ...]  # (control, place, condition): the same for a control at an end
     constants: tuple[float, ...]
+
+    def rank_of(self, held: Held) -> int | None:
+        """Which of the pointwise constraints is held; None where it is a state or a control."""
+        rank = held.order
+        return rank if rank < len(self.pointwise) and self.pointwise[rank].label == held.name else None
+
+    def reached_by(self, output: int) -> tuple[int, set[Quantity]]:
+        """The controls that first move an output of the point function, and in which derivative of it they appear.
+
+        None of them, and the number of states, where no derivative has any (Bryson, Denham, Dreyfus, 1963, on the order
+        of a constraint on states; from memory).
+        """
+        n, reached = self.point.states, {output}
+        for order in range(n + 1):
+            pairs = zip(self.point.jacobian_rows, self.point.jacobian_columns, strict=True)
+            columns = {column for row, column in pairs if row in reached}
+            controls = {self.lowered.controls[c - n] for c in columns if n <= c < n + self.point.controls}
+            if controls:
+                return order, controls
+            reached = {column for column in columns if column < n}
+        return n, set()
 
 
 class Environment:

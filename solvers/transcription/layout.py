@@ -46,6 +46,10 @@ class Layout:
         """The length of each point's stretch (M), from the values of the places."""
         return np.asarray(places[self.stretch + 1] - places[self.stretch])
 
+    def ends_on_point(self, point: int) -> bool:
+        """Whether the last point of an interval is its right end."""
+        return bool(np.isin(self.inner[point], self.nodes).all())
+
     def points(self, places: Array) -> Array:
         """Where the points are (M), from the values of the places."""
         return np.asarray(places[self.stretch] + self.fractions * self.lengths(places))

@@ -63,9 +63,11 @@ def limits(compiled: Compiled, where: Layout, rows: Rows) -> tuple[Array, Array,
         lower[indices], upper[indices] = state_lower, state_upper
     lower[where.controls], upper[where.controls] = control_lower, control_upper
     for held in problem.held:
-        _hold(held, compiled, where, lower, upper)
+        if compiled.rank_of(held) is None:
+            _hold(held, compiled, where, lower, upper)
     for implied in problem.implied:
-        _leave_out(implied, compiled, where, lower, upper)
+        if compiled.rank_of(implied) is None:
+            _leave_out(implied, compiled, where, lower, upper)
     for touch in problem.touches:
         node = where.at_place[[place.label for place in problem.places].index(touch.place)]
         states = compiled.lowered.states
@@ -85,8 +87,11 @@ def limits(compiled: Compiled, where: Layout, rows: Rows) -> tuple[Array, Array,
     row_lower, row_upper = np.zeros(rows.count), np.zeros(rows.count)
     count = len(where.fractions)
     pointwise = np.array([interval_of(c, constants) for c in compiled.pointwise]).reshape(-1, 2)
-    row_lower[rows.pointwise : rows.rims] = np.tile(pointwise[:, 0], count)
-    row_upper[rows.pointwise : rows.rims] = np.tile(pointwise[:, 1], count)
+    contact, needless = contacts(compiled, where, problem.held), contacts(compiled, where, problem.implied)
+    floors = np.where(needless < 0, -np.inf, np.tile(pointwise[:, 0], (count, 1)))
+    ceilings = np.where(needless > 0, np.inf, np.tile(pointwise[:, 1], (count, 1)))
+    row_lower[rows.pointwise : rows.rims] = np.where(contact > 0, ceilings, floors).ravel()
+    row_upper[rows.pointwise : rows.rims] = np.where(contact < 0, floors, ceilings).ravel()
     rims = np.array([interval_of(c, constants) for _, _, c in compiled.rims]).reshape(-1, 2)
     row_lower[rows.rims : rows.rims + len(rims)], row_upper[rows.rims : rows.rims + len(rims)] = rims.T
     conditions = np.array([interval_of(c, constants) for c in compiled.conditions]).reshape(-1, 2)
@@ -124,6 +129,25 @@ def _leave_out(implied: Held, compiled: Compiled, where: Layout, lower: Array, u
         lower[inside] = -np.inf
     else:
         upper[inside] = np.inf
+
+
+def contacts(compiled: Compiled, where: Layout, held: tuple[Held, ...]) -> NDArray[np.int8]:
+    """On which limit a pointwise constraint is held at each point (M x c): -1 the lower, 1 the upper one, 0 on none.
+
+    One on states alone is held at the node where its arc begins too, which is the last point of the stretch before:
+    what is on its limit there and at all points of an interval determines as many controls as the interval has points.
+    """
+    count, n = len(where.fractions), compiled.point.states
+    sides = np.zeros((count, len(compiled.pointwise)), np.int8)
+    for one in held:
+        rank = compiled.rank_of(one)
+        if rank is None:
+            continue
+        sides[where.stretch == one.stretch, rank] = one.side
+        entry = where.first[where.at_place[one.stretch]] - 1
+        if compiled.reached_by(n + rank)[0] > 0 and entry >= 0 and where.ends_on_point(entry):
+            sides[entry, rank] = one.side
+    return sides
 
 
 def _along(held: Held, compiled: Compiled, where: Layout) -> Indices:

@@ -36,6 +36,11 @@ class Program(Placement):
     row_upper: Array
     numbers: Numbers  # f, g and their derivatives at any z
 
+    @property
+    def overdetermined(self) -> bool:
+        """Whether there are more equations than variables that can move."""
+        return bool((self.row_lower == self.row_upper).sum() > (self.lower < self.upper).sum())
+
 
 def transcribe(compiled: Compiled, mesh: Mesh, where: Layout, scales: Scales, row_sizes: RowSizes) -> Program:
     """Put a compiled problem on a mesh with its layout."""

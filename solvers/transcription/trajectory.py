@@ -208,24 +208,35 @@ class Carried:
 
 def carry(path: Trajectory, mesh: Mesh, where: Layout) -> Carried:
     """Bring a trajectory onto another mesh of the same problem."""
-    source, old = path.program, path.program.layout
-    order = row_order(source.compiled, mesh, where)
+    old = path.program.layout
     z = np.zeros(where.size)
     z[where.places], z[where.parameters] = path.places, path.parameters
     z[where.integrals] = path.z[old.integrals]
-    points = where.points(path.places)
-    _draw(z, path, where, mesh.breaks(path.places), points)
+    _draw(z, path, where, mesh.breaks(path.places), where.points(path.places))
+    carried = _with_multipliers(z, path, path.program.compiled, mesh, where)
+    source = path.program
+    fixed = (source.lower == source.upper)[old.parameters]
+    carried.bounds[where.parameters] = np.where(fixed, 0.0, path.bound_multipliers[old.parameters])
+    return carried
 
+
+def _with_multipliers(z: Array, path: Trajectory, compiled: Compiled, mesh: Mesh, where: Layout) -> Carried:
+    """Variables of the same or of a related problem with the multipliers that a trajectory has there."""
+    source, old = path.program, path.program.layout
+    order = row_order(compiled, mesh, where)
+    places = z[where.places]
+    points = where.points(places)
     rows = np.zeros(order.count)
     costates = at_points(path.breaks, path.costate_modes, points)
     rows[: order.ends] = (-costates * mesh.weights[:, None]).ravel()
     rows[order.ends : order.pointwise] = costates[where.first[np.flatnonzero(mesh.gauss) + 1] - 1].ravel()
-    measures = where.measures * where.lengths(path.places)
+    measures = where.measures * where.lengths(places)
     density = at_points(path.breaks, path.multiplier_modes, points)
     rows[order.pointwise : order.rims] = (density * measures[:, None]).ravel()
     if order.integrals - order.rims == source.rows.integrals - source.rows.rims:
         rows[order.rims : order.integrals] = path.row_multipliers[source.rows.rims : source.rows.integrals]
-    rows[order.integrals :] = path.row_multipliers[source.rows.integrals :]
+    same = min(order.count - order.integrals, source.rows.count - source.rows.integrals)
+    rows[order.integrals :][:same] = path.row_multipliers[source.rows.integrals :][:same]
 
     bounds = np.zeros(where.size)
     pushes = np.where(source.lower == source.upper, 0.0, path.bound_multipliers)  # what fixes one value stays there
@@ -233,7 +244,6 @@ def carry(path: Trajectory, mesh: Mesh, where: Layout) -> Carried:
     nearest = np.searchsorted((path.points[1:] + path.points[:-1]) / 2, points)  # multipliers of bounds may jump
     for new, before in ((where.inner, old.inner), (where.controls, old.controls)):
         bounds[new] = (pushes[before] / old_measures[:, None])[nearest] * measures[:, None]
-    bounds[where.parameters] = pushes[old.parameters]
     return Carried(z, bounds, rows)
 
 
@@ -254,13 +264,21 @@ def at_points(breaks: Array, modes: Array, places: Array) -> Array:
 
 
 def distance(now: Trajectory, before: Trajectory) -> float:
-    """The largest difference of the states of two meshes of one problem, relative to each state's size."""
+    """The largest difference of the states of two meshes of one problem, relative to each state's size.
+
+    At the same shares of the stretches, as free places may have moved; or, where the ends have not, at the same places:
+    where one arc leads smoothly into the next, their junction may move far without the curve.
+    """
     if now.states.shape[1] == 0:
         return 0.0
-    now_at, before_at = _fractions(now), _fractions(before)
-    values = at_points(before_at[0], before.state_modes, now_at[1])
-    differences = np.abs(values - now.states).max(axis=0)
-    return float((differences / sizes_of(now)[0]).max())
+    ways = [(_fractions(now), _fractions(before))]
+    if np.array_equal(now.places[[0, -1]], before.places[[0, -1]]):
+        ways.append(((now.breaks, now.points), (before.breaks, before.points)))
+    differences = [
+        np.abs(at_points(before_at[0], before.state_modes, now_at[1]) - now.states).max(axis=0)
+        for now_at, before_at in ways
+    ]
+    return float((np.min(differences, axis=0) / sizes_of(now)[0]).max())
 
 
 def sizes_of(path: Trajectory) -> tuple[Array, Array]:
@@ -300,3 +318,8 @@ def related(path: Trajectory, compiled: Compiled, mesh: Mesh, where: Layout) -> 
     _draw(z, path, where, mesh.breaks(places), where.points(places))
     z[where.integrals] = path.z[path.program.layout.integrals]
     return z
+
+
+def related_with_multipliers(path: Trajectory, compiled: Compiled, mesh: Mesh, where: Layout) -> Carried:
+    """The same with the multipliers of what both problems have."""
+    return _with_multipliers(related(path, compiled, mesh, where), path, compiled, mesh, where)

@@ -17,9 +17,7 @@ KNOWN_FAILURES: dict[tuple[str, str], str] = {
 }
 """Promises that are not kept yet: (case, promise) -> reason.  A promise is "value", "error", "verdict" or "figures"."""
 
-HARD: dict[str, str] = {
-    "C15": "the value is right after 10 s, but the curve bends at many places where the path's limit binds or not",
-}
+HARD: dict[str, str] = {}
 """Cases that take too long to promise a result on any machine -> why.  They get little time and owe only "honesty"."""
 
 HARD_SECONDS = 15.0

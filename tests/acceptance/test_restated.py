@@ -19,8 +19,9 @@ from tests.acceptance.solving import solve_document
 EVERY_WAY = ("A06", "A13", "A25a", "A37", "B02", "B13")
 """Squared gauge, gauge with a length, a plain chain, an obstacle, a switch, a limit on a state."""
 
-UNDECIDED = {id for id, promise in KNOWN_FAILURES if promise == "verdict"}
-"""What these are called depends on how far rounding lets the last check go."""
+UNDECIDED = {id for id, promise in KNOWN_FAILURES if promise == "verdict"} | {"C15"}
+"""What these are called depends on how far rounding lets the last check go; of C15 (some 1,500 points on its last mesh)
+also on whether the next mesh still fits into its time on a busy machine."""
 
 CASES = {id: case for id, case in CATALOGUE.items() if id not in HARD}
 

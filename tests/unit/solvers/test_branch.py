@@ -4,10 +4,12 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
+from scipy.optimize import brentq
 
 from solvers.problem import Continuation
 from solvers.solve import solve
 from tests.unit.solvers.problems import shape, stated
+from tests.unit.solvers.search.test_contacts import RAMP
 
 
 def film(**members):
@@ -111,3 +113,16 @@ def test_a_branch_that_is_cut_short_says_how_to_follow_it_on(monkeypatch):
     branch = followed(film(), "h", 1.3)
     told = f"To follow it from here, give h the value {branch.points[-1].at:.6g} under `constants`."
     assert branch.end == f"The branch has 2 points; it may go on. {told}"
+
+
+def test_a_branch_begins_from_an_arc_along_a_constraint():
+    """u = x + c until t, then u stays: x(1) = c exp(t) (2 - t) - c; where the arc begins and ends moves with c."""
+    members = RAMP | {"constants": {"c": 1.0}, "constraints": ["u - x <= c"]}
+    branch = followed(stated(**members), "c", 1.1)
+    assert branch.end.startswith("The branch reaches the value asked for.")
+    end = 1.6 * np.exp(0.4) - 1
+    for point in branch.points:
+        c = point.at
+        t = brentq(lambda t, c=c: c * np.exp(t) * (2 - t) - c - end, 0.0, 1.0)
+        value = c**2 * ((np.exp(2 * t) - 1) / 2 + (1 - t) * np.exp(2 * t))
+        assert point.value == pytest.approx(value, abs=1e-5)

@@ -8,7 +8,7 @@ import pytest
 from solvers.formula.evaluate import REAL, evaluate
 from solvers.formula.nodes import Number
 from solvers.minimise.ipopt import Minimum, Outcome
-from solvers.problem import Place
+from solvers.problem import Held, Place
 from solvers.search.attempt import loose
 from solvers.search.holding import released, surely_held_rightly, wrongly_held
 from solvers.search.signals import MOST_SWITCHES, SWITCH, Switch, signals, switches
@@ -116,12 +116,12 @@ TWO = {
     ],
 )
 def test_a_held_state_determines_the_controls_that_first_move_it(held, controls):
-    assert determined_by(held, compiled(stated(**TWO))) == controls
+    assert determined_by(Held(0, *held, 1), compiled(stated(**TWO))) == controls
 
 
 def test_a_state_that_no_control_moves_determines_none():
     still = stated(**TWO | {"dynamics": ["x'' = u", "y' = -y"], "unknowns": {"x": {}, "y": {}, "u": {}}})
-    assert determined_by(("y", 0), compiled(still)) == set()
+    assert determined_by(Held(0, "y", 0, 1), compiled(still)) == set()
 
 
 def test_a_control_runs_singular_beside_another_that_is_held():
