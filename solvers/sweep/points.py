@@ -15,12 +15,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from solvers.deadline import Deadline
+from solvers.forms.choice import Found
 from solvers.problem import Problem
 from solvers.solution import Progress, Solution, Status, SweepPoint, Verdict, Watch
-from solvers.sweep.found import Found, Tools
 from solvers.sweep.grid import Grid, Index
 from solvers.sweep.stepping import Origin, Stepper
 from solvers.sweep.taken_over import CLOSELY, taken_over
+from solvers.sweep.tools import Tools
 
 Array = NDArray[np.float64]
 

@@ -9,12 +9,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from solvers.deadline import Deadline
+from solvers.forms.choice import Found
 from solvers.forms.gauge import Form, Gauged
 from solvers.problem import Problem
 from solvers.search.structure import present_switches
-from solvers.sweep.found import Found, Tools
 from solvers.sweep.neighbour import Neighbours, Solved
 from solvers.sweep.repair import plainly, repaired
+from solvers.sweep.tools import Tools
 
 Array = NDArray[np.float64]
 

@@ -126,8 +126,8 @@ def test_where_a_limit_begins_to_bind_the_structure_is_repaired_near_the_neighbo
         }
     )
     from_nothing = []
-    found = single._found
-    monkeypatch.setattr(single, "_found", lambda *given: from_nothing.append(given) or found(*given))
+    found = single.solve_in_best_form
+    monkeypatch.setattr(single, "solve_in_best_form", lambda *given: from_nothing.append(given) or found(*given))
     points = solve(swept(problem, D=[1.2, 1.3, 1.45, 1.6, 1.7])).sweep
     for point in points:
         fastest = min(np.sqrt(point.at[0] + 0.045), 1.2)

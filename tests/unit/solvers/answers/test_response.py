@@ -12,8 +12,9 @@ from service.spec import read
 from solvers.answers.response import SingularError, changes
 from solvers.answers.sensitivity import limit_shifts
 from solvers.deadline import in_seconds
+from solvers.evidence import UNDETERMINED
 from solvers.search.pursuit import pursue
-from solvers.solve import UNDETERMINED, solve
+from solvers.solve import solve
 from tests.unit.solvers.problems import LEAST_TIME, shape, stated
 
 
@@ -124,7 +125,7 @@ def test_a_singular_system_is_told_and_not_solved():
 
 
 def test_on_a_huge_mesh_the_change_is_left_out_and_the_result_says_so(monkeypatch):
-    monkeypatch.setattr("solvers.solve.LARGEST", 10)
+    monkeypatch.setattr("solvers.evidence.LARGEST", 10)
     problem = stated(constants={"D": "1 +/- 0.1"}, endpoints=["x(0) = 0", "x(1) = D"])
     solution = solve(problem)
     assert solution.changes == ()

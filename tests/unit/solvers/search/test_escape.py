@@ -3,12 +3,13 @@
 import pytest
 
 from solvers.deadline import in_seconds
+from solvers.evidence import PROVED, with_evidence
+from solvers.forms.choice import Found
 from solvers.search.escape import escapes, may_escape
 from solvers.search.pursuit import pursue
 from solvers.search.record import End
 from solvers.solution import Verdict
-from solvers.solve import PROVED, _solution, solve
-from solvers.sweep.found import Found
+from solvers.solve import solve
 from tests.unit.solvers.problems import shape, stated
 
 FREE_TIME = {
@@ -62,7 +63,7 @@ def test_out_of_time_a_bound_that_is_only_approached_proves_nothing():
     pursuit = pursue(problem, None, in_seconds(30))
     assert may_escape(pursuit)
     pursuit.end = End.TIME
-    told = _solution(problem, Found(pursuit, None), 0.0)
+    told = with_evidence(problem, Found(pursuit, None), 0.0)
     assert told.verdict not in PROVED
 
 

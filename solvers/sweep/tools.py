@@ -1,4 +1,4 @@
-"""What a sweep takes from a single solve, and gives to it."""
+"""What a sweep needs of a single solve."""
 
 from __future__ import annotations
 
@@ -6,22 +6,10 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 
 from solvers.deadline import Deadline
-from solvers.forms.gauge import Form, Gauged
+from solvers.forms.choice import Found
+from solvers.forms.gauge import Form
 from solvers.problem import Problem
-from solvers.search.record import Pursuit
 from solvers.solution import Check, Solution
-
-
-@dataclass(frozen=True, slots=True)
-class Found:
-    """The pursuit of the form in which a problem was solved; `gauged` says how where that is parametric.
-
-    `work` is the processor time in seconds that it took, where somebody needs to know.
-    """
-
-    pursuit: Pursuit
-    gauged: Gauged | None
-    work: float = float("inf")
 
 
 @dataclass(frozen=True, slots=True)

@@ -1,0 +1,275 @@
+"""What was found with its evidence: checks, verdict, prices, slopes, notes, all in the terms of the problem."""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Mapping, Sequence
+from dataclasses import replace
+from types import MappingProxyType
+
+import numpy as np
+
+from solvers import checks
+from solvers.answers.fit import fit
+from solvers.answers.prices import prices
+from solvers.answers.sensitivity import Shift, limit_shifts, slopes
+from solvers.answers.stretches import stretches
+from solvers.checks import conditions, curvature, lower_bound, refinement, rounding
+from solvers.checks.redundancy import unambiguous
+from solvers.checks.sampling import Sampler
+from solvers.curve import Curve
+from solvers.deadline import in_seconds
+from solvers.diagnosis import diagnose, with_feasibility
+from solvers.forms.choice import Found
+from solvers.forms.gauge import Gauged
+from solvers.forms.graph import as_graph, checks_on_graph, prices_of_original, uprights
+from solvers.forms.slack import SLACK
+from solvers.minimise.ipopt import FLOOR
+from solvers.problem import Problem, Seek
+from solvers.search.chatter import chatter
+from solvers.search.escape import escapes, may_escape
+from solvers.search.record import End, Pursuit
+from solvers.search.structure import present_switches
+from solvers.solution import (
+    Change,
+    Check,
+    Price,
+    Slope,
+    Solution,
+    Status,
+    Stretch,
+    SwitchPlace,
+    Verdict,
+)
+from solvers.tables.usage import table_notes
+from solvers.transcription.functions import SMOOTHING, rounded_functions
+from solvers.transcription.lowering import primed
+from solvers.transcription.trajectory import Trajectory, costate_curve, curve
+from solvers.undetermined import Undetermined, undetermined
+from solvers.verdict import judge
+
+EARLY = {
+    End.INFEASIBLE: Verdict.INFEASIBLE,
+    End.NOWHERE: Verdict.NOT_VERIFIED,
+    End.UNBOUNDED: Verdict.NO_OPTIMUM,
+}
+"""Verdicts that need no curve."""
+
+PROVED = (Verdict.GLOBAL_MINIMUM, Verdict.GLOBAL_MAXIMUM)
+
+NO_OPTIMUM_FOUND = (Verdict.NOT_VERIFIED, Verdict.BEST_FOUND)
+"""Verdicts on a curve whose multipliers need not be those of an optimum."""
+
+UNDETERMINED = (
+    "How the tolerances of the constants change the curve is left out: the optimality conditions do not determine it "
+    "here (their matrix is singular, or nearly so)."
+)
+
+LARGEST = 60_000
+"""Unknowns of a mesh up to which the change of the whole curve is found: its system is factorised once more."""
+
+
+def with_evidence(
+    problem: Problem,
+    found: Found,
+    began: float,
+    *,
+    brief: bool = False,
+    drawn: bool = True,
+    known: Mapping[str, Check] = MappingProxyType({}),
+) -> Solution:
+    """What was found with its evidence; a brief one has the value and the verdict, and the curve where it is wanted."""
+    pursuit, gauged = found.pursuit, found.gauged
+    solved_at = time.perf_counter()
+    if gauged is not None and pursuit.solved:
+        pursuit = _with_uprights(pursuit, gauged)
+    if not brief and pursuit.end in (End.CONVERGED, End.SETTLED) and problem.seek is not Seek.STATIONARY:
+        findings = escapes(pursuit, in_seconds(problem.options.time_limit))
+        pursuit = replace(pursuit, end=End.AWAY, findings=findings) if findings else pursuit
+    diagnosis = diagnose(pursuit)
+    times = {"solve": solved_at - began}
+    if not pursuit.solved:
+        if diagnosis is not None and gauged is not None and gauged.graph:  # their places are in the parameter
+            diagnosis = replace(diagnosis, findings=tuple(replace(f, place=None) for f in diagnosis.findings))
+        nearest = None if pursuit.nearest is None or gauged is not None else curve(pursuit.nearest)
+        return Solution(EARLY.get(pursuit.end), curve=nearest, diagnosis=diagnosis, meshes=tuple(pursuit.steps),
+                        iterations=pursuit.iterations, times=times)  # fmt: skip
+    path = unambiguous(pursuit.paths[-1])
+    names = {p.name for p in problem.parameters}
+    parameters = {p.name: float(v) for p, v in zip(pursuit.problem.parameters, path.parameters, strict=True)
+                  if p.name in names}  # fmt: skip
+    sampler = Sampler(path)
+    rounded_off = rounding.effect(sampler)
+    value, value_error = path.value, pursuit.value_error + rounded_off
+    value_error_or_none = value_error if np.isfinite(value_error) else None
+    curve_error = pursuit.curve_error if np.isfinite(pursuit.curve_error) else None
+    made = checks.run(path, original=problem, value_error=value_error_or_none, curve_error=curve_error,
+                      known=known, sampler=sampler)  # fmt: skip
+    if conditions.NAME not in known and np.isfinite(taken := conditions.value_anew(sampler)):
+        value_error += abs(taken - value)
+        value_error_or_none = None if value_error_or_none is None else value_error
+    diagnosis = with_feasibility(diagnosis, made)
+    verdict = judge(problem.seek, made, pursuit.end)
+    if verdict in PROVED and pursuit.end is End.TIME and may_escape(pursuit):
+        verdict = Verdict.BEST_FOUND  # the bound may be one that is only approached, and nobody had time to find out
+    if verdict in PROVED and (gap := lower_bound.gap(made)) is not None:  # the bound says it better than the meshes
+        shown = gap * pursuit.value_size + FLOOR * abs(path.program.value_scale)
+        value_error = min(value_error, shown + rounded_off)
+        value_error_or_none, diagnosis = value_error, None
+    shape = multipliers = Curve(path.breaks, {})
+    if drawn or gauged is not None:
+        shape = curve(path)
+    bought: tuple[Price, ...] = ()
+    depends: tuple[Slope, ...] = ()
+    altered: tuple[Change, ...] = ()
+    left_out = ""
+    if not brief:
+        multipliers, bought = costate_curve(path), prices(path)
+        shifts = () if verdict in NO_OPTIMUM_FOUND else limit_shifts(path)
+        depends = slopes(path, shifts) if shifts else ()
+        altered, left_out = _changes(path, depends, shifts)
+    if gauged is not None:
+        factor = gauged.slope(value)
+        anew = tuple(check for check in made if check.name not in known)  # those taken over are told already
+        if gauged.graph:
+            told = {check.name: check for check in checks_on_graph(gauged, shape, anew)}
+            made = tuple(told.get(check.name, check) for check in made)
+        bought = prices_of_original(bought, factor)
+        depends = tuple(replace(slope, slope=factor * slope.slope) for slope in depends)
+        if drawn:
+            shape, multipliers, altered = as_graph(gauged, shape, multipliers, factor, altered)
+        value, value_error_or_none = (
+            gauged.value(value),
+            None if value_error_or_none is None else abs(factor) * value_error,
+        )
+    loose = () if brief else _undetermined(problem, path, gauged, made, value_error)
+    kept = {name: functions for name, functions in shape.functions.items() if not name.startswith(SLACK + " ")}
+    fitted = None if brief else fit(path)
+    notes = () if brief else (*_notes(problem, pursuit, gauged), *([left_out] if left_out else []))
+    switches = _switches(pursuit, gauged)
+    return Solution(
+        verdict=verdict,
+        value=value,
+        value_error=value_error_or_none,
+        parameters=parameters,
+        curve=Curve(shape.breaks, kept) if drawn else None,
+        curve_error=curve_error,
+        costates=multipliers,
+        prices=bought,
+        slopes=depends,
+        changes=altered,
+        checks=made,
+        diagnosis=diagnosis,
+        undetermined=loose,
+        meshes=tuple(pursuit.steps),
+        iterations=pursuit.iterations,
+        times=times | {"checks": time.perf_counter() - solved_at},
+        fit=fitted,
+        notes=notes,
+        switches=switches,
+        stretches=() if brief else _stretches(path, gauged),
+    )
+
+
+def _undetermined(
+    problem: Problem, path: Trajectory, gauged: Gauged | None, made: Sequence[Check], value_error: float
+) -> tuple[Undetermined, ...]:
+    """What nothing determines: by the formulas, or where the second variation leaves it open by moving the curve."""
+    found = undetermined(problem)
+    status = {check.name: check.status for check in made}
+    if found or status.get(curvature.NAME) is not Status.NOT_APPLICABLE or not np.isfinite(value_error):
+        return found
+    solid = {*checks.FEASIBLE, *checks.FIRST_ORDER} - {refinement.NAME}  # from mesh to mesh such curves may wander
+    if any(status.get(name) is Status.FAILED for name in solid):
+        return ()
+    from solvers.answers.flat import flat_directions  # here, so that SciPy is loaded only where it is needed
+
+    def on_graph(place: float) -> float:
+        if gauged is None or not gauged.graph:
+            return place
+        return float(curve(path).evaluate(problem.independent, np.array([place]))[0])
+
+    names = {unknown.name for unknown in problem.unknowns} | {parameter.name for parameter in problem.parameters}
+    return flat_directions(path, names, value_error, on_graph)
+
+
+def _switches(pursuit: Pursuit, gauged: Gauged | None) -> tuple[SwitchPlace, ...]:
+    """Where controls switch, on the problem's own independent variable."""
+    path = pursuit.paths[-1]
+    found = present_switches(path)
+    places = np.array([switch.place for switch in found])
+    if gauged is not None and gauged.graph and found:
+        places = curve(path).evaluate(gauged.original.independent, places)
+    return tuple(SwitchPlace(float(place), switch.of) for place, switch in zip(places, found, strict=True))
+
+
+def _stretches(path: Trajectory, gauged: Gauged | None) -> tuple[Stretch, ...]:
+    """What lies between the switches; of a curve in parametric form what is said of the unknowns themselves."""
+    found = stretches(path)
+    if gauged is None or not found:
+        return found
+    names = {*(unknown.name for unknown in gauged.original.unknowns), *(c.label for c in gauged.original.conditions)}
+    found = tuple(stretch for stretch in found if stretch.of in names)
+    if not gauged.graph:
+        return found
+    x, drawn = gauged.original.independent, curve(path)
+    starts = drawn.evaluate(x, np.array([s.start for s in found])).tolist()
+    ends = drawn.evaluate(x, np.array([s.end for s in found])).tolist()
+    told = (replace(s, start=start, end=end) for s, start, end in zip(found, starts, ends, strict=True))
+    return tuple(stretch for stretch in told if stretch.start < stretch.end)
+
+
+def about_switches(problem: Problem, found: Solution) -> str:
+    """Where controls switch, as a sentence; empty where they do not."""
+    if not found.switches:
+        return ""
+    unit = f" {problem.independent_unit.text}" if problem.independent_unit.text else ""
+    listed = ", ".join(f"{switch.place / problem.independent_unit.factor:.9g}" for switch in found.switches)
+    word = "Switches" if any(switch.of for switch in found.switches) else "Corners"
+    return f"{word} were found and made unknowns of the problem: {problem.independent} = {listed}{unit}."
+
+
+def _with_uprights(pursuit: Pursuit, gauged: Gauged) -> Pursuit:
+    """A pursuit in parametric form whose curve rises straight up somewhere ends torn: as a function it jumps there."""
+    found = uprights(gauged, curve(pursuit.paths[-1]))
+    if found and pursuit.end in (End.CONVERGED, End.SETTLED):
+        return replace(pursuit, end=End.TORN, findings=found)
+    return pursuit
+
+
+def _changes(path: Trajectory, depends: Sequence[Slope], shifts: Sequence[Shift]) -> tuple[tuple[Change, ...], str]:
+    """How the tolerances of the constants change the curve; where that is left out, why."""
+    if not any(slope.tolerance for slope in depends):
+        return (), ""
+    if path.program.layout.size > LARGEST:
+        return (), f"How the tolerances change the curve is left out: the mesh has more than {LARGEST:,} unknowns."
+    from solvers.answers.response import SingularError, changes  # here, so that SciPy is loaded only where it is needed
+
+    try:
+        return changes(path, shifts), ""
+    except SingularError:
+        return (), UNDETERMINED
+
+
+def _notes(problem: Problem, pursuit: Pursuit, gauged: Gauged | None) -> list[str]:
+    """What was done to the problem that its reader should know."""
+    notes = []
+    if gauged is not None:
+        notes.append(gauged.note)
+    if len(pursuit.problem.unknowns) > len(problem.unknowns) and gauged is None:
+        notes.append("abs, max or min in the integrand: written exactly, with auxiliary unknowns that bound them.")
+    rounded = sorted(rounded_functions(pursuit.problem))
+    if rounded:
+        notes.append(f"{', '.join(rounded)} in the formulas: rounded over a width of {SMOOTHING:g}, so that "
+                     "derivatives exist. What that may change of the value is part of its error.")  # fmt: skip
+    notes += table_notes(pursuit.paths[-1])
+    crowd = None if gauged is not None else chatter(pursuit.paths[-1])
+    if crowd is not None and crowd.steady:
+        place = f"{problem.independent} = {crowd.ends / problem.independent_unit.factor:.4g}"
+        unit = f" {problem.independent_unit.text}" if problem.independent_unit.text else ""
+        notes.append(f"{primed(crowd.control)} chatters: it switches ever faster towards {place}{unit}, each time "
+                     f"after some {crowd.ratio:.2f} of the time before. The first switches were found; what follows "
+                     "runs as their mean.")  # fmt: skip
+    if pursuit.end is End.SETTLED:
+        notes.append("The value stands still to the tolerance; the curve may be less exact than the value.")
+    return notes

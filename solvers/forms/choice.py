@@ -1,0 +1,80 @@
+"""The form in which a problem is solved best: parametric with one gauge or another, or as it is given."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cache
+
+import numpy as np
+
+from solvers.deadline import Deadline
+from solvers.forms.broken import with_corner
+from solvers.forms.first_look import at_constant_speed, first_look
+from solvers.forms.gauge import Form, Gauged
+from solvers.forms.ridge import off_ridge
+from solvers.forms.signs import better_below, one_signed, positive, positive_along, where_defined
+from solvers.forms.slack import with_slacks
+from solvers.minimise.ipopt import FLOOR
+from solvers.problem import Problem, Seek
+from solvers.search.at_bound import at_bound
+from solvers.search.given import solve_as_given
+from solvers.search.pursuit import go_on
+from solvers.search.record import End, Pursuit
+from solvers.solution import Watch
+
+LOST = (End.FAILED, End.UNDEFINED)
+"""Ends from which another first guess may help."""
+DOUBTFUL = 0.5
+"""Share of the time for a form that may turn out not to be equivalent."""
+
+
+@dataclass(frozen=True, slots=True)
+class Found:
+    """The pursuit of the form in which a problem was solved; `gauged` says how where that is parametric.
+
+    `work` is the processor time in seconds that it took, where somebody needs to know.
+    """
+
+    pursuit: Pursuit
+    gauged: Gauged | None
+    work: float = float("inf")
+
+
+def solve_in_best_form(problem: Problem, watch: Watch | None, deadline: Deadline, form: Form) -> Found:
+    """The form in which a problem is solved, solved; `form` makes it parametric where that can be."""
+    if problem.seek is Seek.STATIONARY:  # no jump can gain here, and Newton's method goes straighter in few variables
+        pursuit = solve_as_given(with_slacks(problem), watch, deadline)
+        if pursuit.end in (End.CONVERGED, End.STOPPED, End.TIME):
+            return Found(pursuit, None)
+    look = cache(lambda: first_look(problem))
+    for squared in (True, False):
+        gauged = form(problem, lambda: look().sizes, squared)
+        if gauged is None or (squared and not gauged.squared):
+            continue
+        doubtful = squared and not one_signed(problem)
+        if doubtful and not positive(better_below(problem) * look().integrand):
+            continue
+        room = deadline.within(DOUBTFUL * deadline.left) if doubtful else deadline
+        gauged = gauged if gauged.squared else at_constant_speed(gauged, look())
+        pursuit = solve_as_given(with_slacks(gauged.problem), watch, room)
+        if squared and pursuit.end in LOST and gauged.graph:  # its square has values where a root has none
+            gauged = where_defined(at_constant_speed(gauged, look()))
+            pursuit = solve_as_given(with_slacks(gauged.problem), watch, room)
+        if squared and pursuit.solved and not rightly_squared(gauged, pursuit, doubtful):
+            if (best := at_bound(problem, pursuit)) is not None:
+                return Found(best, None)
+            continue
+        if doubtful and pursuit.solved and pursuit.end is End.TIME:
+            pursuit = go_on(pursuit, watch, deadline)
+        if (pursuit.solved and pursuit.end is not End.TORN) or pursuit.end in (End.STOPPED, End.TIME):
+            return Found(pursuit, gauged)
+    pursuit = solve_as_given(with_slacks(problem), watch, deadline)
+    return Found(off_ridge(pursuit, watch, deadline) or with_corner(pursuit, watch, deadline) or pursuit, None)
+
+
+def rightly_squared(gauged: Gauged, pursuit: Pursuit, doubtful: bool) -> bool:
+    """Whether the square was told from zero (else its root has no slope) and the integrand is positive all along."""
+    path = pursuit.paths[-1]
+    error = pursuit.value_error if np.isfinite(pursuit.value_error) else 0.0
+    clear = path.value > max(error, FLOOR * abs(path.program.value_scale))
+    return clear and (not doubtful or positive_along(gauged, path))

@@ -1,0 +1,61 @@
+"""One form of a problem solved as it is given: plain meshes, the switches that they show, and what is left."""
+
+from __future__ import annotations
+
+import time
+
+from solvers.deadline import Deadline
+from solvers.problem import Problem
+from solvers.search.early import sharpened_early
+from solvers.search.pursuit import go_on, pursue
+from solvers.search.record import End, Pursuit
+from solvers.search.sharpen import sharpen
+from solvers.search.signals import jumps_at_breaks
+from solvers.solution import Watch
+
+SHARE = 0.6
+"""Share of the remaining time that the search for switches may take."""
+PATIENCE = 20.0
+"""How much longer than the plain meshes it may take."""
+NEARLY = 30.0
+"""How far from the tolerance, as a factor, plain meshes are given a chance to finish first."""
+
+
+def solve_as_given(problem: Problem, watch: Watch | None, deadline: Deadline) -> Pursuit:
+    """Plain meshes first; where controls switch, then the switches as unknowns; else plain meshes to the end."""
+    began = time.process_time()
+    pursuit = pursue(problem, watch, deadline, meshes=1)
+    early = sharpened_early(pursuit, watch, deadline)
+    if early is not None:
+        return _after(pursuit, early)
+    if pursuit.solved and (pursuit.steps[-1].error or 0.0) <= NEARLY * problem.options.tolerance:
+        pursuit = pursuit if pursuit.end is End.CONVERGED else go_on(pursuit, watch, deadline, 3)
+    if pursuit.end is End.CONVERGED and jumps_at_breaks(pursuit.paths[-1]):  # their multipliers are not the only ones
+        sharp = sharpen(pursuit, watch, deadline.within(PATIENCE * (time.process_time() - began)))
+        return pursuit if sharp is None or sharp.end is not End.CONVERGED else _after(pursuit, sharp)
+    if not pursuit.solved or pursuit.end in (End.CONVERGED, End.STOPPED, End.TIME, End.TORN):
+        return pursuit
+    room = min(SHARE * deadline.left, PATIENCE * (time.process_time() - began) + 1.0)
+    sharp = sharpen(pursuit, watch, deadline.within(room))
+    if sharp is not None:
+        sharp = _after(pursuit, sharp)
+        if sharp.end is End.TIME and not deadline.over and sharp.value_met_before:
+            sharp.end = End.SETTLED  # the room for this search was over, not the time of the run
+        if sharp.end is End.CONVERGED or (sharp.end is End.SETTLED and sharp.shown):
+            return sharp
+    plain = go_on(pursuit, watch, deadline)
+    return plain if sharp is None or _nearer(plain, sharp) else sharp
+
+
+def _after(plain: Pursuit, sharp: Pursuit) -> Pursuit:
+    """The pursuit with switches, its record with that of the plain meshes before it."""
+    sharp.steps[:0] = plain.steps
+    sharp.iterations += plain.iterations
+    return sharp
+
+
+def _nearer(plain: Pursuit, sharp: Pursuit) -> bool:
+    """Whether plain meshes have come nearer to the tolerance than those with switches."""
+    if End.CONVERGED in (plain.end, sharp.end) or plain.shown != sharp.shown:
+        return plain.end is End.CONVERGED or (plain.shown and sharp.end is not End.CONVERGED)
+    return plain.value_error <= sharp.value_error
