@@ -16,9 +16,3 @@ KNOWN_FAILURES: dict[tuple[str, str], str] = {
     "volume by it is not zero, and beyond the best length only y >= 0 holds): no second variation can decide it",
 }
 """Promises that are not kept yet: (case, promise) -> reason.  A promise is "value", "error", "verdict" or "figures"."""
-
-HARD: dict[str, str] = {}
-"""Cases that take too long to promise a result on any machine -> why.  They get little time and owe only "honesty"."""
-
-HARD_SECONDS = 15.0
-"""The time limit of a hard case."""

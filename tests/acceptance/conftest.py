@@ -5,11 +5,9 @@ from __future__ import annotations
 import os
 from collections.abc import Callable, Iterator
 from concurrent.futures import Future, ThreadPoolExecutor
-from math import inf
 
 import pytest
 
-from tests.acceptance.catalogue import HARD, HARD_SECONDS
 from tests.acceptance.records import Case
 from tests.acceptance.solving import Outcome, solve_document
 
@@ -24,10 +22,7 @@ def outcome_of_case(request: pytest.FixtureRequest) -> Iterator[Callable[[Case],
     }
     with ThreadPoolExecutor(len(os.sched_getaffinity(0))) as pool:
         waiting: dict[str, Future[Outcome]] = {
-            case.id: pool.submit(
-                solve_document, case.document, case.figures, longest=HARD_SECONDS if case.id in HARD else inf
-            )
-            for case in selected.values()
+            case.id: pool.submit(solve_document, case.document, case.figures) for case in selected.values()
         }
         yield lambda case: waiting[case.id].result()
         pool.shutdown(cancel_futures=True)

@@ -4,8 +4,6 @@ from __future__ import annotations
 
 from collections.abc import Callable
 
-from solvers.solution import Verdict
-from tests.acceptance.catalogue import HARD
 from tests.acceptance.records import Case, Sort
 from tests.acceptance.solving import Outcome
 
@@ -58,33 +56,15 @@ def figures(case: Case, outcome: Outcome) -> str:
     return "; ".join(wrong)
 
 
-CLAIMS_LITTLE = frozenset({None, Verdict.STATIONARY, Verdict.NOT_VERIFIED, Verdict.BEST_FOUND})
-"""Verdicts that leave open whether the curve is the sought one."""
-
-
-def honesty(case: Case, outcome: Outcome) -> str:
-    """Whatever ended the search: a claim that is made is true."""
-    if outcome.verdict in CLAIMS_LITTLE:
-        return ""
-    claimed = verdict(case, outcome) or value(case, outcome)
-    return claimed or (error(case, outcome) if case.sort.attained else "")
-
-
 PROMISES: dict[str, Callable[[Case, Outcome], str]] = {
     "value": value,
     "error": error,
     "verdict": verdict,
     "figures": figures,
-    "honesty": honesty,
 }
 
 
 def owed(case: Case) -> tuple[str, ...]:
-    """What is tested of a case."""
-    return ("honesty",) if case.id in HARD else wanted(case)
-
-
-def wanted(case: Case) -> tuple[str, ...]:
     """The promises that make sense for a case."""
     names = ["value"] if case.value is not None else []
     names += ["error"] if case.sort.attained else []

@@ -15,8 +15,8 @@ from pathlib import Path
 
 from service import samples
 from solvers.solution import Verdict
-from tests.acceptance.catalogue import CATALOGUE, HARD, KNOWN_FAILURES
-from tests.acceptance.promises import PROMISES, wanted
+from tests.acceptance.catalogue import CATALOGUE, KNOWN_FAILURES
+from tests.acceptance.promises import PROMISES, owed
 from tests.acceptance.records import TAGS, Case, Sort
 from tests.acceptance.solving import Outcome, solve_document
 
@@ -32,12 +32,12 @@ def chosen(words: list[str]) -> list[Case]:
 
 def line(case: Case, outcome: Outcome) -> tuple[bool, str]:
     """Whether a case keeps all its promises, and its line."""
-    broken = {name: complaint for name in wanted(case) if (complaint := PROMISES[name](case, outcome))}
+    broken = {name: complaint for name in owed(case) if (complaint := PROMISES[name](case, outcome))}
     distance = bound = ""
     if case.sort.attained and outcome.value is not None:
         distance = f"{abs(outcome.value - case.value) / case.allowed:.2g}"
         bound = "no" if "error" in broken else "yes"
-    expected = case.id in HARD or all((case.id, name) in KNOWN_FAILURES for name in broken)
+    expected = all((case.id, name) in KNOWN_FAILURES for name in broken)
     known = "(known) " if broken and expected else ""
     why = "; ".join(f"{name}: {text}" for name, text in broken.items()) if outcome.value is not None else ""
     return not broken, formatted(case.id, outcome, distance, bound, known + (why or outcome.trouble) if broken else "")

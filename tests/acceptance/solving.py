@@ -6,8 +6,8 @@ import multiprocessing
 import os
 import time
 from collections.abc import Mapping
-from dataclasses import dataclass, field, replace
-from math import inf, nan
+from dataclasses import dataclass, field
+from math import nan
 from multiprocessing.connection import Connection
 from pathlib import Path
 from random import Random
@@ -46,16 +46,15 @@ def solve_document(
     document: Path,
     figures: tuple[Figure, ...] = (),
     seconds: float = 240.0,
-    longest: float = inf,
     change: str = "",
 ) -> Outcome:
-    """Solve in a process of its own; end it after `seconds`.  `longest` bounds the document's own time limit.
+    """Solve in a process of its own; end it after `seconds`.
 
     `change` states the problem in another way first (`restating.CHANGES`); what is told is of the problem as it stands.
     """
     began = time.perf_counter()
     receiver, sender = PROCESSES.Pipe(duplex=False)
-    child = PROCESSES.Process(target=_send_outcome, args=(sender, document, figures, longest, change), daemon=True)
+    child = PROCESSES.Process(target=_send_outcome, args=(sender, document, figures, change), daemon=True)
     child.start()
     sender.close()
     try:
@@ -71,9 +70,9 @@ def solve_document(
     return Outcome(trouble=trouble, seconds=time.perf_counter() - began)
 
 
-def _send_outcome(sender: Connection, document: Path, figures: tuple[Figure, ...], longest: float, change: str) -> None:
+def _send_outcome(sender: Connection, document: Path, figures: tuple[Figure, ...], change: str) -> None:
     try:
-        sender.send(outcome_of(document, figures, longest, change))
+        sender.send(outcome_of(document, figures, change))
     except Exception as error:  # whatever happens is an outcome of this document, not of the test run
         place = error.__traceback__
         while place and place.tb_next:
@@ -82,15 +81,13 @@ def _send_outcome(sender: Connection, document: Path, figures: tuple[Figure, ...
         sender.send(Outcome(trouble=f"{type(error).__name__}: {error}{where}"))
 
 
-def outcome_of(document: Path, figures: tuple[Figure, ...] = (), longest: float = inf, change: str = "") -> Outcome:
+def outcome_of(document: Path, figures: tuple[Figure, ...] = (), change: str = "") -> Outcome:
     """Read, assemble and solve in this process; raises what these raise."""
     from service.assemble import assemble
     from service.spec import read
     from solvers.solve import solve
 
     problem = assemble(read(document.read_bytes()))
-    limit = min(problem.options.time_limit, longest)
-    problem = replace(problem, options=replace(problem.options, time_limit=limit))
     restated = CHANGES[change](problem, Random(document.stem + change)) if change else Restated(problem)
     began = time.perf_counter()
     solution = solve(restated.problem)

@@ -12,7 +12,7 @@ import numpy as np
 import pytest
 
 from solvers.solution import Verdict
-from tests.acceptance.catalogue import CATALOGUE, HARD, KNOWN_FAILURES
+from tests.acceptance.catalogue import CATALOGUE, KNOWN_FAILURES
 from tests.acceptance.restating import CHANGES
 from tests.acceptance.solving import solve_document
 
@@ -22,9 +22,6 @@ EVERY_WAY = ("A06", "A13", "A25a", "A37", "B02", "B13")
 UNDECIDED = {id for id, promise in KNOWN_FAILURES if promise == "verdict"} | {"C15"}
 """What these are called depends on how far rounding lets the last check go; of C15 (some 1,500 points on its last mesh)
 also on whether the next mesh still fits into its time on a busy machine."""
-
-CASES = {id: case for id, case in CATALOGUE.items() if id not in HARD}
-
 
 UNFIT = {
     ("C03", "sign"): "squares of misfits are only ever minimised",
@@ -49,7 +46,8 @@ def plain(verdict):
 
 
 @pytest.mark.parametrize(
-    "case, change", [pytest.param(CASES[id], change, id=f"{id}-{change}") for id in CASES for change in ways(id)]
+    "case, change",
+    [pytest.param(CATALOGUE[id], change, id=f"{id}-{change}") for id in CATALOGUE for change in ways(id)],
 )
 def test_another_statement_has_the_same_answer(outcome_of_case, case, change):
     first, other = outcome_of_case(case), solve_document(case.document, change=change)

@@ -41,7 +41,7 @@ from solvers.transcription.lowering import lower
 from solvers.transcription.mesh import uniform
 from solvers.transcription.program import Program, transcribe
 from solvers.transcription.scaling import find_row_sizes, find_scales
-from tests.acceptance.catalogue import CATALOGUE, HARD
+from tests.acceptance.catalogue import CATALOGUE
 from tests.benchmarks import scripted
 from tests.benchmarks.scripts import SCRIPTS
 
@@ -232,7 +232,7 @@ def _script_table(names: list[str]) -> None:
 def _floor_table(names: list[str]) -> None:
     print(f"{'problem':<8} {'ours ms':>8} {'bare ms':>8} {'ratio':>6}  the bare call")
     rows = []
-    for name in names or [name for name in CATALOGUE if name not in HARD]:
+    for name in names or CATALOGUE:
         try:
             row = above_floor(name)
         except IndexError:
