@@ -46,8 +46,14 @@ def make_program(compiled: Compiled, mesh: Mesh, where: Layout, z: Array, before
 
 
 def loose(compiled: Compiled) -> bool:
-    """Whether a control that acts linearly is free somewhere: there many curves may do nearly equally well."""
-    problem = compiled.lowered.problem
+    """Whether many curves may do nearly equally well.
+
+    So where a control that acts linearly is free, and where a state comes to lie on its limit smoothly: the place where
+    it does changes the value only to third order.
+    """
+    problem, states = compiled.lowered.problem, compiled.lowered.states
+    if any((held.name, held.order) in states for held in problem.held):
+        return True
     return bool(problem.calm) if problem.held else bool(linear_controls(compiled))
 
 

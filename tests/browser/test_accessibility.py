@@ -34,7 +34,9 @@ def test_a_composer_full_of_complaints_is_clean(open_page, audit):
 def test_a_list_with_runs_is_clean(open_page, audit):
     page = open_page("/")
     page.get_by_role("button", name="Solve now: Film of least area").click()
-    page.wait_for_url("**/runs/*")
+    page.get_by_role(
+        "heading", name="The curve", exact=True
+    ).wait_for()  # until then the page of a run goes on by itself
     page.goto("/runs")
     page.get_by_role("link", name="Film of least area").first.wait_for()
     for scheme in SCHEMES:

@@ -8,6 +8,8 @@ from solvers.search.pursuit import pursue
 from solvers.search.record import End
 from solvers.search.sharpen import sharpen
 from solvers.search.structure import present_switches
+from solvers.solution import Verdict
+from solvers.solve import solve
 from tests.unit.solvers.problems import LEAST_TIME, regulator, stated
 
 CATALYST = {
@@ -122,3 +124,23 @@ def test_places_stay_in_order_while_the_end_is_free():
     if found is not None:
         assert np.all(np.diff(found.paths[-1].places) > -1e-9)
         assert found.paths[-1].value == pytest.approx(0.7640, rel=1e-3)  # the value that plain meshes tend to
+
+
+@pytest.mark.parametrize("size", [1.0, 1e-3, 1e3])
+def test_a_film_meets_its_floor_where_the_catenary_touches_it(size):
+    """x = a/2 cosh(2 c t/a) touches the floor a/2 from x(0) = 2 a: at t = acosh(4)/4 for c = 2 a (closed form).
+
+    The place changes the value only to third order.
+    """
+    film = stated(
+        independent={"name": "t", "from": 0, "to": 3},
+        constants={"c": 2 * size},
+        dynamics=None,
+        unknowns={"x": {"within": [size / 2, None]}},
+        functional={"seek": "minimum", "integrand": "x*sqrt(1 + (x'/c)^2)"},
+        endpoints=[f"x(0) = {2 * size}", f"x(3) = {1.5 * size}"],
+    )
+    solution = solve(film)
+    assert solution.verdict is Verdict.LOCAL_MINIMUM
+    places = [switch.place for switch in solution.switches]
+    assert places == pytest.approx([np.arccosh(4) / 4, 3 - np.arccosh(3) / 4], abs=3e-4)
