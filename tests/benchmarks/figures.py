@@ -1,6 +1,6 @@
 """How long we take beside what else one could do, in processor time of one process; prints tables.
 
-python -m tests.benchmarks.figures script|floor|growth|small [IDS]...
+python -m tests.benchmarks.figures script|floor|growth|small|sweep [IDS]...
 """
 
 from __future__ import annotations
@@ -10,6 +10,7 @@ import re
 import statistics
 import sys
 import time
+from collections import Counter
 from collections.abc import Callable, Iterable, Iterator
 from concurrent.futures import ProcessPoolExecutor
 from dataclasses import dataclass
@@ -44,6 +45,7 @@ from solvers.transcription.scaling import find_row_sizes, find_scales
 from tests.acceptance.catalogue import CATALOGUE
 from tests.benchmarks import scripted
 from tests.benchmarks.scripts import SCRIPTS
+from tests.benchmarks.sweeps import CASES, swept
 
 TOLERANCE = 1e-6
 """Relative, of the value: that of our documents, and that to which the script's meshes agree."""
@@ -263,7 +265,21 @@ def _small_table(names: list[str]) -> None:
         print(f"{name:<8} {1e3 * small(name):.0f} ms", flush=True)
 
 
-TABLES = {"script": _script_table, "floor": _floor_table, "growth": _growth_table, "small": _small_table}
+POINTS = 1_000
+"""How many values of a constant a sweep has here."""
+
+
+def _sweep_table(names: list[str]) -> None:
+    print(f"{'problem':<12} {'single ms':>9} {'point ms':>9} {'share':>6}  verdicts")
+    for name in names or CASES:
+        found = swept(name, POINTS)
+        verdicts = Counter(point.verdict.value if point.verdict else "none" for point in found.points)
+        print(f"{name:<12} {1e3 * found.single:9.1f} {1e3 * found.together / POINTS:9.1f} {found.share:6.3f}  "
+              f"{dict(verdicts)}", flush=True)  # fmt: skip
+
+
+TABLES = {"script": _script_table, "floor": _floor_table, "growth": _growth_table, "small": _small_table,
+          "sweep": _sweep_table}  # fmt: skip
 
 if __name__ == "__main__":
     warm_up()
