@@ -150,6 +150,8 @@ def first_places(problem: Problem, path: Trajectory) -> list[float]:
 def present_switches(path: Trajectory) -> list[Switch]:
     """The switches that are places of a path already, with what is held otherwise on both sides or jumps there."""
     problem, where = path.program.compiled.lowered.problem, path.program.layout
+    if not any(place.label.startswith(SWITCH + " ") for place in problem.places):
+        return []
     labelled = [(signal.quantity[0], signal.labels) for signal in signals(path) if not signal.state]
     touches = {touch.place: ((touch.name, touch.order), touch.side) for touch in problem.touches}
     found = []
