@@ -1,7 +1,7 @@
 """What a solve costs beside a script by hand, beside one bare call of the minimiser, and as the mesh grows.
 
 All in processor time of one process and by turns; the tables are in the developers' guide, `tests.benchmarks.figures`
-prints them.  What is wanted stands in the docstrings; where it is not reached, the bound is what is kept today.
+prints them.  What is wanted stands in the docstrings; the bounds leave room for the noise of a shared machine.
 """
 
 from __future__ import annotations
@@ -26,21 +26,22 @@ def test_ours_beside_a_script(benchmark):
     benchmark.extra_info |= {row.name: {"ours_ms": 1e3 * row.ours, "script_ms": 1e3 * row.other, "errors":
                                         (row.our_error, row.other_error)} for row in rows}  # fmt: skip
     assert all(row.our_error <= max(figures.TOLERANCE, row.other_error) for row in rows)
-    assert figures.mean_ratio(rows) <= 1.5
-    assert sum(row.ours for row in rows) <= 0.5 * sum(row.other for row in rows)
+    assert figures.mean_ratio(rows) <= 0.5
+    assert max(row.ratio for row in rows) <= 3
+    assert sum(row.ours for row in rows) <= 0.1 * sum(row.other for row in rows)
 
 
 def test_ours_above_the_floor(benchmark):
-    """Wanted: 2.5 of one bare call on the last mesh, in the geometric mean over all problems."""
+    """Wanted: 2.5 of one bare call on the last mesh, in the geometric mean over all problems; kept: twice as much."""
     rows = benchmark.pedantic(lambda: [figures.above_floor(name) for name in SOME], rounds=1)
     benchmark.extra_info |= {row.name: {"ours_ms": 1e3 * row.ours, "bare_ms": 1e3 * row.other} for row in rows}
     solved = [row for row in rows if row.finished]
     assert len(solved) >= len(SOME) / 2
-    assert figures.mean_ratio(solved) <= 10
+    assert figures.mean_ratio(solved) <= 6
 
 
 def test_the_cost_grows_with_the_mesh(benchmark):
-    """Wanted: ten times the intervals cost at most 12 times the time and memory; beyond the cache it is 11 to 13."""
+    """Wanted: ten times the intervals cost at most 12 times the time and memory."""
     few, some, many = benchmark.pedantic(lambda: list(figures.growth()), rounds=1)
     benchmark.extra_info |= {str(size.unknowns): {"ms": 1e3 * size.iteration, "MB": size.megabytes}
                              for size in (few, some, many)}  # fmt: skip
