@@ -101,21 +101,18 @@ def with_evidence(
     sampler = Sampler(path)
     rounded_off = rounding.effect(sampler)
     value, value_error = path.value, pursuit.value_error + rounded_off
-    value_error_or_none = value_error if np.isfinite(value_error) else None
-    curve_error = pursuit.curve_error if np.isfinite(pursuit.curve_error) else None
-    made = checks.run(path, original=problem, value_error=value_error_or_none, curve_error=curve_error,
+    curve_error = _if_finite(pursuit.curve_error)
+    made = checks.run(path, original=problem, value_error=_if_finite(value_error), curve_error=curve_error,
                       known=known, sampler=sampler)  # fmt: skip
     if conditions.NAME not in known and np.isfinite(taken := conditions.value_anew(sampler)):
         value_error += abs(taken - value)
-        value_error_or_none = None if value_error_or_none is None else value_error
     diagnosis = with_feasibility(diagnosis, made)
     verdict = judge(problem.seek, made, pursuit.end)
     if verdict in PROVED and pursuit.end is End.TIME and may_escape(pursuit):
         verdict = Verdict.BEST_FOUND  # the bound may be one that is only approached, and nobody had time to find out
     if verdict in PROVED and (gap := lower_bound.gap(made)) is not None:  # the bound says it better than the meshes
         shown = gap * pursuit.value_size + FLOOR * abs(path.program.value_scale)
-        value_error = min(value_error, shown + rounded_off)
-        value_error_or_none, diagnosis = value_error, None
+        value_error, diagnosis = min(value_error, shown + rounded_off), None
     shape = multipliers = Curve(path.breaks, {})
     if drawn or gauged is not None:
         shape = curve(path)
@@ -128,6 +125,7 @@ def with_evidence(
         shifts = () if verdict in NO_OPTIMUM_FOUND else limit_shifts(path)
         depends = slopes(path, shifts) if shifts else ()
         altered, left_out = _changes(path, depends, shifts)
+    stated = value_error  # of the original's value
     if gauged is not None:
         factor = gauged.slope(value)
         anew = tuple(check for check in made if check.name not in known)  # those taken over are told already
@@ -138,10 +136,7 @@ def with_evidence(
         depends = tuple(replace(slope, slope=factor * slope.slope) for slope in depends)
         if drawn:
             shape, multipliers, altered = as_graph(gauged, shape, multipliers, factor, altered)
-        value, value_error_or_none = (
-            gauged.value(value),
-            None if value_error_or_none is None else abs(factor) * value_error,
-        )
+        value, stated = gauged.value(value), abs(factor) * value_error
     loose = () if brief else _undetermined(problem, path, gauged, made, value_error)
     kept = {name: functions for name, functions in shape.functions.items() if not name.startswith(SLACK + " ")}
     fitted = None if brief else fit(path)
@@ -150,7 +145,7 @@ def with_evidence(
     return Solution(
         verdict=verdict,
         value=value,
-        value_error=value_error_or_none,
+        value_error=_if_finite(stated),
         parameters=parameters,
         curve=Curve(shape.breaks, kept) if drawn else None,
         curve_error=curve_error,
@@ -169,6 +164,11 @@ def with_evidence(
         switches=switches,
         stretches=() if brief else _stretches(path, gauged),
     )
+
+
+def _if_finite(error: float) -> float | None:
+    """An error, or None before one mesh was compared with another."""
+    return error if np.isfinite(error) else None
 
 
 def _undetermined(

@@ -1,6 +1,5 @@
 """Switches that coarse meshes show, against closed forms; what these do not show clearly is left to more effort."""
 
-import numpy as np
 import pytest
 
 from solvers.deadline import in_seconds
@@ -8,8 +7,8 @@ from solvers.search.early import sharpened_early
 from solvers.search.pursuit import pursue
 from solvers.search.record import End
 from solvers.search.structure import present_switches
-from tests.unit.solvers.problems import LEAST_TIME, regulator, shape, stated
-from tests.unit.solvers.search.test_sharpen import CATALYST, SPEED_LIMIT
+from tests.unit.solvers.problems import regulator, shape, stated
+from tests.unit.solvers.search.test_sharpen import CLOSED_FORMS
 
 
 def sharpened(problem):
@@ -19,19 +18,9 @@ def sharpened(problem):
     return sharpened_early(base, None, deadline), base
 
 
-@pytest.mark.parametrize(
-    "members, value, places, precision",
-    [
-        # Pontryagin et al. (1962), The Mathematical Theory of Optimal Processes, section 5 (from memory).
-        (LEAST_TIME, 1 + np.sqrt(6), [1 + np.sqrt(3 / 2)], 1e-9),
-        # Gunn, Thomas (1965); Dolan, More, Munson (2004), ANL/MCS-TM-273, problem 14; more digits as in the catalogue.
-        (CATALYST, -0.0480556858608775, [0.1362990345945556, 0.7252301075916548], 1e-8),
-        # Closed form: ramp, cruise, ramp.  The first mesh blurs the end of the cruise.
-        (SPEED_LIMIT, 2.5, [0.5, 2.0], 1e-9),
-    ],
-    ids=("bang-bang", "singular arc", "limit on a state"),
-)
+@CLOSED_FORMS
 def test_one_plain_mesh_is_enough_where_it_shows_the_switches(members, value, places, precision):
+    """Of the speed limit it blurs the end of the cruise."""
     found, base = sharpened(stated(**members))
     assert len(base.paths) == 1
     assert found.end is End.CONVERGED

@@ -24,13 +24,7 @@ SPEED_LIMIT = LEAST_TIME | {
 }
 
 
-def sharpened(problem):
-    deadline = in_seconds(40)
-    base = pursue(problem, None, deadline, meshes=3)
-    return sharpen(base, None, deadline)
-
-
-@pytest.mark.parametrize(
+CLOSED_FORMS = pytest.mark.parametrize(
     "members, value, places, precision",
     [
         # Pontryagin et al. (1962), The Mathematical Theory of Optimal Processes, section 5 (from memory).
@@ -42,6 +36,15 @@ def sharpened(problem):
     ],
     ids=("bang-bang", "singular arc", "limit on a state"),
 )
+
+
+def sharpened(problem):
+    deadline = in_seconds(40)
+    base = pursue(problem, None, deadline, meshes=3)
+    return sharpen(base, None, deadline)
+
+
+@CLOSED_FORMS
 def test_switches_and_value_are_those_of_the_closed_form(members, value, places, precision):
     found = sharpened(stated(**members))
     assert found.end is End.CONVERGED
