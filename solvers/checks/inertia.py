@@ -17,9 +17,10 @@ from scipy.sparse.linalg import ArpackError, LinearOperator, eigsh, splu
 
 from solvers.checks import condensed
 from solvers.checks.scattered import scattered
-from solvers.checks.second_order import Second, hessian_of_program, owners
+from solvers.checks.second_order import Second, hessian_at, owners
 from solvers.deadline import FOREVER, Deadline
-from solvers.transcription.trajectory import Trajectory
+from solvers.minimise.ipopt import Minimum
+from solvers.transcription.program import Program
 
 Array = NDArray[np.float64]
 Flags = NDArray[np.bool_]
@@ -116,20 +117,23 @@ def _condensed(second: Second, free: Flags, rows: Flags, shift: float) -> int | 
     return condensed.count_negative(form, second.jacobian.dense()[rows], owner, PENALTY, NOISE)
 
 
-def minimum_of_program(path: Trajectory) -> bool:
+def minimum_of_program(program: Program, found: Minimum) -> bool:
     """Whether a stationary point of a program at which no inequality binds is its minimum among those nearby.
 
     False also where that is not found out at once, in small full matrices.
     """
-    program, numbers = path.program, path.program.numbers
+    numbers = program.numbers
     free = program.lower < program.upper
     if np.count_nonzero(free) > FEW:
         return False
     pattern = numbers.jacobian_pattern
-    jacobian = scattered(pattern.shape, pattern.rows, pattern.columns(), numbers.jacobian(path.z / program.scale))
+    jacobian = scattered(pattern.shape, pattern.rows, pattern.columns(), numbers.jacobian(found.z))
     rows = jacobian.dense()[program.row_lower == program.row_upper]
     owner = np.where(free, owners(program.layout), condensed.FIXED)
-    return condensed.count_negative(hessian_of_program(path).dense(), rows, owner, PENALTY, NOISE) == 0
+    return (
+        condensed.count_negative(hessian_at(program, found.z, found.multipliers).dense(), rows, owner, PENALTY, NOISE)
+        == 0
+    )
 
 
 def _factorized(band: sp.csc_matrix) -> tuple[Callable[[Array], Array] | None, int]:

@@ -14,6 +14,7 @@ from solvers.checks.variation import second_variation
 from solvers.search.signals import SWITCH
 from solvers.transcription.layout import Layout
 from solvers.transcription.limits import contacts
+from solvers.transcription.program import Program
 from solvers.transcription.trajectory import Trajectory
 
 Array = NDArray[np.float64]
@@ -120,9 +121,15 @@ def smooth_junctions(sampler: Sampler) -> Indices:
 def hessian_of_program(path: Trajectory) -> Scattered:
     """The second derivatives of the program's own Lagrangian, whose quadrature is at the collocation points."""
     program = path.program
-    multipliers = path.row_multipliers * program.row_scale / abs(program.value_scale)
+    return hessian_at(
+        program, path.z / program.scale, path.row_multipliers * program.row_scale / abs(program.value_scale)
+    )
+
+
+def hessian_at(program: Program, z: Array, multipliers: Array) -> Scattered:
+    """The same at any z and multipliers of the rows, both scaled."""
     pattern, numbers = program.numbers.hessian_pattern, program.numbers
-    upper = numbers.hessian(path.z / program.scale, 1.0, multipliers)
+    upper = numbers.hessian(z, 1.0, multipliers)
     return both_triangles(scattered(pattern.shape, pattern.rows, pattern.columns(), upper))
 
 

@@ -70,16 +70,21 @@ def stationary_point(program: Program, start: Start, watch: Callable[[Iterate], 
     return Minimum(outcome, z, system.value(z), nothing, multipliers, count, seconds, 0.0, "Newton")
 
 
-def minimum_nearby(program: Program, start: Start, watch: Callable[[Iterate], bool]) -> Minimum | None:
-    """The minimum next to one of a coarser mesh; None where a limit binds there or whole steps do not go straight."""
-    if start.multipliers is None or start.bound_multipliers is None:
-        return None
+def straight_to(program: Program, start: Start, watch: Callable[[Iterate], bool]) -> Minimum | None:
+    """The stationary point next to a start; None where a limit binds there or whole steps do not go straight.
+
+    From the minimum of a coarser mesh it is a minimum too.  Where the start has no multipliers the first step finds
+    them, and what it leaves of the residual tells nothing yet.
+    """
     began = time.perf_counter()
     system = _System(program)
-    if max(np.abs(start.bound_multipliers[system.free]).max(initial=0.0),
-           np.abs(np.delete(start.multipliers, system.equal)).max(initial=0.0)) > BINDING:  # fmt: skip
-        return None
     z, multipliers = np.clip(start.z, program.lower, program.upper), start.multipliers
+    known = multipliers is not None and start.bound_multipliers is not None
+    if multipliers is None or start.bound_multipliers is None:
+        multipliers = np.zeros(program.rows.count)
+    elif max(np.abs(start.bound_multipliers[system.free]).max(initial=0.0),
+             np.abs(np.delete(multipliers, system.equal)).max(initial=0.0)) > BINDING:  # fmt: skip
+        return None
     residual = system.residual(z, multipliers)
     size = float(np.abs(residual).max(initial=0.0))
     for count in range(STRAIGHT):
@@ -92,12 +97,11 @@ def minimum_nearby(program: Program, start: Start, watch: Callable[[Iterate], bo
         residual = system.residual(z, multipliers)
         before, size = size, float(np.abs(residual).max(initial=0.0))
         if size <= TOLERANCE:
-            if not within_limits(program, z):
+            value, seconds = system.value(z), time.perf_counter() - began
+            if not within_limits(program, z) or not np.isfinite(value):  # slopes may have values where it has none
                 return None
-            seconds = time.perf_counter() - began
-            return Minimum(Outcome.SOLVED, z, system.value(z), np.zeros(len(z)), multipliers, count + 1, seconds, 0.0,
-                           "Newton")  # fmt: skip
-        if not size <= FALL * before:
+            return Minimum(Outcome.SOLVED, z, value, np.zeros(len(z)), multipliers, count + 1, seconds, 0.0, "Newton")
+        if not size <= (FALL * before if known or count else np.inf):
             return None
     return None
 

@@ -9,6 +9,7 @@ import numpy as np
 
 from solvers.minimise.ipopt import LEAST_SQUARES_MULTIPLIERS, Minimum, Outcome, Start
 from solvers.minimise.undefined import undefined_places
+from solvers.problem import Seek
 from solvers.search.attempt import FIRST_INTERVALS, SOLVED, end_of, first_mesh, loose, make_program
 from solvers.search.conflict import VIOLATED, curve_of_least_violation, least_violation_of
 from solvers.search.contradiction import contradictory
@@ -16,6 +17,7 @@ from solvers.search.effort import Minimiser
 from solvers.search.record import End, Pursuit
 from solvers.search.unbounded import in_growing_boxes
 from solvers.starts.guess import first_guess, guesses
+from solvers.transcription.functions import linear_controls
 from solvers.transcription.layout import layout
 from solvers.transcription.mesh import Mesh
 from solvers.transcription.program import Program
@@ -58,7 +60,9 @@ def begin(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Program, Minimum] | N
             program = make_program(compiled, mesh, where, guess.z)
             pursuit.first = pursuit.first or program
             doubtful = {"ipopt.max_iter": DOUBTFUL_ITERATIONS} if Outcome.INFEASIBLE in outcomes else {}
-            minimum = minimise_.patiently(program, Start(guess.z / program.scale), options | doubtful)
+            start = Start(guess.z / program.scale)
+            minimum = _straight(program, start, minimise_) if attempt == 0 else None
+            minimum = minimum or minimise_.patiently(program, start, options | doubtful)
             if minimum.outcome in LOST and _outgrown(minimum):
                 z = minimum.z * program.scale
                 program = make_program(compiled, mesh, where, z)
@@ -91,6 +95,19 @@ def begin(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Program, Minimum] | N
         pursuit.end = End.NOWHERE
         return None
     return _after_least_violation(pursuit, minimise_)
+
+
+def _straight(program: Program, start: Start, minimise_: Minimiser) -> Minimum | None:
+    """The minimum next to a guess, where whole steps go straight there: many guesses are that near.
+
+    Not where a control switches, for then its limits bind.
+    """
+    from solvers.checks.inertia import minimum_of_program  # here, so that SciPy is loaded only where it is needed
+
+    if linear_controls(program.compiled) or minimise_.pursuit.problem.seek is Seek.STATIONARY:
+        return None
+    found = minimise_.nearby(program, start)
+    return found if found is not None and minimum_of_program(program, found) else None
 
 
 def begin_from(

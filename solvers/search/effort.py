@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from solvers.deadline import Deadline
 from solvers.minimise.elastic import LeastViolation, least_violation
 from solvers.minimise.ipopt import WIDE, Iterate, Minimum, Outcome, Start, minimise
-from solvers.minimise.newton import minimum_nearby, stationary_point
+from solvers.minimise.newton import stationary_point, straight_to
 from solvers.problem import Seek
 from solvers.search.record import Pursuit
 from solvers.solution import MeshStep, Progress, Watch
@@ -47,8 +47,8 @@ class Minimiser:
         return minimum
 
     def nearby(self, program: Program, start: Start) -> Minimum | None:
-        """The minimum next to that of a coarser mesh, where it is found without looking around."""
-        minimum = minimum_nearby(program, start, self._hear(program))
+        """The stationary point next to a start, where it is found without looking around."""
+        minimum = straight_to(program, start, self._hear(program))
         if minimum is not None:
             self.pursuit.last = (program, minimum)
         return minimum

@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 from solvers.checks.inertia import minimum_of_program
 from solvers.deadline import Deadline
 from solvers.minimise.ipopt import CLOSE, FLOOR, Iterate, Minimum, Start, minimise
-from solvers.minimise.newton import minimum_nearby, stationary_point
+from solvers.minimise.newton import stationary_point, straight_to
 from solvers.problem import Problem, Seek
 from solvers.search import refinement
 from solvers.search.attempt import SOLVED
@@ -90,12 +90,12 @@ class Neighbours:
         if problem.seek is Seek.STATIONARY:
             minimum = stationary_point(program, start, _unheard)
         else:
-            straight = minimum_nearby(program, start, _unheard)
+            straight = straight_to(program, start, _unheard)
             minimum = straight or minimise(program, start, deadline=self.deadline, options=CLOSE)
         if minimum.outcome not in SOLVED:
             return Reached()
         found = trajectory(program, minimum)
-        convex = minimum.convex if straight is None else minimum_of_program(found)
+        convex = minimum.convex if straight is None else minimum_of_program(program, straight)
         if present_switches(found) and (at_the_edge(found) or not held_rightly(found)):
             return Reached(path=found)
         pursuit = self._pursuit(near.pursuit, found, minimum, measured)

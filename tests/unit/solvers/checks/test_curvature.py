@@ -10,9 +10,11 @@ from solvers.checks.sampling import Sampler
 from solvers.checks.second_order import smooth_junctions
 from solvers.checks.variation import second_variation
 from solvers.deadline import in_seconds
+from solvers.minimise.newton import stationary_point
 from solvers.search.pursuit import pursue
 from solvers.search.sharpen import sharpen
 from solvers.solution import Status
+from solvers.transcription.trajectory import as_start
 from tests.unit.solvers.checks.conftest import problem_of
 
 
@@ -72,7 +74,10 @@ def test_beyond_it_the_action_is_not_least_and_the_point_is_found(stationary, ex
 @pytest.mark.parametrize("length, least", [(1.0, True), (3.0, True), (3.3, False), (7.0, False)])
 def test_the_program_alone_tells_its_minimum_from_a_saddle(stationary, length, seek, least):
     """Between points of a sweep that are looked at closely; the conjugate point lies at pi."""
-    assert inertia.minimum_of_program(stationary(action(length, seek=seek))) is least
+    path = stationary(action(length, seek=seek))
+    program = path.program
+    found = stationary_point(program, as_start(path), lambda iterate: False)
+    assert inertia.minimum_of_program(program, found) is least
 
 
 def test_the_focal_point_of_a_free_end_comes_earlier(stationary, examine):

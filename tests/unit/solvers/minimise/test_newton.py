@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 
 from solvers.minimise.ipopt import Outcome, Start, minimise
-from solvers.minimise.newton import minimum_nearby, stationary_point
+from solvers.minimise.newton import stationary_point, straight_to
 from solvers.solution import Status, Verdict
 from solvers.solve import solve
 from solvers.transcription.mesh import uniform
@@ -62,10 +62,10 @@ def near(bounds, away):
     found = minimise(program, Start(np.full(program.layout.size, 0.1)))
     moved = found.z + away * np.cos(np.arange(len(found.z)))
     start = Start(moved, found.bound_multipliers, found.multipliers)
-    return found, minimum_nearby(program, start, lambda iterate: False)
+    return found, straight_to(program, start, lambda iterate: False)
 
 
-def test_whole_steps_go_straight_to_a_minimum_nearby():
+def test_whole_steps_go_straight_to_a_straight_to():
     found, again = near({}, 1e-3)
     assert again.outcome is Outcome.SOLVED
     assert again.iterations <= 4
@@ -88,4 +88,14 @@ def test_a_step_across_a_limit_is_none():
     program = program_of(problem, uniform(1, 6, 6))
     size = program.layout.size
     start = Start(np.full(size, 0.1), np.zeros(size), np.zeros(program.rows.count))
-    assert minimum_nearby(program, start, lambda iterate: False) is None
+    assert straight_to(program, start, lambda iterate: False) is None
+
+
+def test_from_a_guess_without_multipliers_the_first_step_finds_them():
+    problem = stated(unknowns={"x": {}, "u": {}}, functional={"integrand": "u^2 + x^4"})
+    program = program_of(problem, uniform(1, 6, 6))
+    guess = Start(np.full(program.layout.size, 0.1))
+    found, again = minimise(program, guess), straight_to(program, guess, lambda iterate: False)
+    assert again.outcome is Outcome.SOLVED
+    np.testing.assert_allclose(again.z, found.z, atol=1e-8)
+    np.testing.assert_allclose(again.multipliers, found.multipliers, atol=1e-8)
