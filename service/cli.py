@@ -148,12 +148,18 @@ def check(file: str, as_json: bool) -> None:
 
 
 @main.command()
-def samples() -> None:
-    """List the sample problems; each name can stand for FILE."""
-    from service.samples import ABOUT
+@click.argument("name", required=False)
+def samples(name: str | None) -> None:
+    """List the sample problems, or print the document of the one called NAME; each name can stand for FILE."""
+    from service.samples import ABOUT, text
 
-    for name, sentence in ABOUT.items():
-        click.echo(f"{name:<24}{sentence}")
+    if name is None:
+        for known, sentence in ABOUT.items():
+            click.echo(f"{known:<24}{sentence}")
+    elif name in ABOUT:
+        click.echo(text(name), nl=False)
+    else:
+        raise click.UsageError(f"There is no sample '{name}' (`curvewright samples` lists them).")
 
 
 @main.command()

@@ -140,10 +140,15 @@ def test_samples_are_listed_and_can_stand_for_a_file():
     assert done.stdout.startswith(samples.load("hose")["title"])
 
 
+def test_a_sample_is_printed_to_be_edited():
+    assert _run("samples", "hose").stdout == samples.text("hose")
+
+
 @pytest.mark.parametrize(
     ("arguments", "said"),
     [
         (("solve", "nowhere.json"), "no file 'nowhere.json'"),
+        (("samples", "nothing"), "no sample 'nothing'"),
         (("solve", "hose", "--rows", "5"), "--table"),
         (("solve", "hose", "--table", "a.csv", "--rows", "5", "--step", "1"), "not both"),
         (("solve", "hose", "--table", "a.pdf"), ".csv, .json, .xlsx, .npz"),
