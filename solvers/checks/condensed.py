@@ -3,8 +3,8 @@
 What lies inside an interval has to do only with that interval's own ends and with the numbers of the whole curve.  So
 the inside of every interval is eliminated, all of them side by side in small full matrices, and what is left is a
 matrix of the ends and these numbers (static condensation).  Rows enter as a penalty; those that couple several
-intervals stand beside as unknowns of their own, each with one negative pivot.  Where the insides are positive, the
-negative directions are those of what is left (Haynsworth).
+intervals stand beside as unknowns of their own, each with one negative pivot.  The negative directions are those of the
+insides and those of what is left (Haynsworth).
 
 Reference: Golub, Van Loan (2013), Matrix Computations, section 4.5 (block elimination; from memory).
 """
@@ -22,12 +22,14 @@ SHARED, FIXED = -1, -2
 """The owners of what is inside of no interval, and of what does not move."""
 NOTHING = 1e-14
 """Rows shorter than this say nothing."""
+SINGULAR = 1e-11
+"""How small a pivot may be, relative to the largest, where a block is not positive."""
 
 
 def count_negative(form: Array, rows: Array, owner: Indices, penalty: float, noise: float) -> int | None:
     """Negative directions of a form (D x D) where rows (R x D) vanish; `owner` (D) is the interval of each variable.
 
-    None where the inside of an interval has some of its own, or where rounding errors as large as `noise` may decide.
+    None where rounding errors as large as `noise` may decide.
     """
     rows = rows * (owner != FIXED)
     length = np.sqrt(np.einsum("ij,ij->i", rows, rows))
@@ -53,28 +55,37 @@ def count_negative(form: Array, rows: Array, owner: Indices, penalty: float, noi
     corner[first, first] = form[np.ix_(shared, shared)] + alone.T @ alone / penalty
     corner[first, beside], corner[beside, first] = across[:, shared].T, across[:, shared]
     corner[beside, beside] = -penalty * np.eye(len(crossing))
-    rest = _left_over(block, side, corner, noise)
-    if rest is None:
+    factored = _factored(block, side)
+    if factored is None:
         return None
+    factor, signs, moved = factored
+    made = (factor * signs[:, None, :]) @ np.swapaxes(factor, 1, 2), factor @ moved
+    if not max(np.abs(made[0] - block).max(initial=0.0), np.abs(made[1] - side).max(initial=0.0)) < noise:
+        return None
+    flat = moved.reshape(moved.shape[0] * moved.shape[1], len(corner))
+    rest = corner - flat.T @ (signs.ravel()[:, None] * flat)
     pivots = np.linalg.eigvalsh(rest)
     if np.abs(pivots).min(initial=np.inf) <= noise:
         return None
-    return int((pivots < 0).sum()) - len(crossing)
+    return int((pivots < 0).sum()) + int((signs < 0).sum()) - len(crossing)
 
 
-def _left_over(block: Array, side: Array, corner: Array, noise: float) -> Array | None:
-    """The corner of [[block, side], [side', corner]] without what every block has to do with it (N of them)."""
+def _factored(block: Array, side: Array) -> tuple[Array, Array, Array] | None:
+    """Factors, signs (+1, -1) and sides with which every block is factor signs factor' and every side factor moved.
+
+    None where a block is so nearly singular that the signs of its pivots mean nothing.
+    """
     try:
         factor = np.linalg.cholesky(block)
+        signs = np.sign(np.diagonal(factor, axis1=1, axis2=2))
+        return np.asarray(factor), signs, np.asarray(np.linalg.solve(factor, side))
     except np.linalg.LinAlgError:
+        pivots, vectors = np.linalg.eigh(block)
+    sizes = np.abs(pivots)
+    if not sizes.min(initial=np.inf) > SINGULAR * sizes.max(initial=0.0):
         return None
-    moved = np.linalg.solve(factor, side)
-    lost = max(np.abs(made - meant).max(initial=0.0)
-               for made, meant in ((factor @ np.swapaxes(factor, 1, 2), block), (factor @ moved, side)))  # fmt: skip
-    if not lost < noise:
-        return None
-    flat = moved.reshape(moved.shape[0] * moved.shape[1], len(corner))
-    return np.asarray(corner - flat.T @ flat)
+    roots = np.sqrt(sizes)[:, None, :]
+    return np.asarray(vectors * roots), np.sign(pivots), np.asarray(np.swapaxes(vectors / roots, 1, 2) @ side)
 
 
 def _by_owner(owner: Indices, count: int) -> tuple[Indices, Flags]:

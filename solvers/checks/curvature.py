@@ -9,10 +9,11 @@ vanish from some place on belong to a leading part, and the first part that has 
 conjugate point (Jacobi).
 
 Both answers are safe.  A pass holds for any e, since the penalty vanishes on the variations in question.  A negative
-direction is put back onto the constraints and its second variation computed before the curve is condemned, by two
-quadratures, that between the nodes and that of the program: at a singular end one alone may err.  A margin
-decides between both: the second variation is compared with the mean square of the variation itself, relative to the
-functional; in between nothing is said (a closed curve may be turned, an eigenvector may be scaled).
+direction keeps the constraints (of few variables their kernel is computed, of many the direction is put back onto them)
+and its second variation is computed before the curve is condemned, by two quadratures, that between the nodes and that
+of the program: at a singular end one alone may err.  A margin decides between both: the second variation is compared
+with the mean square of the variation itself, relative to the functional; in between nothing is said (a closed curve may
+be turned, an eigenvector may be scaled).
 
 References: Gelfand, Fomin (1963), Calculus of Variations, chapter 5; Nocedal, Wright (2006), Numerical Optimization,
 section 16.2 (from memory).
@@ -67,20 +68,18 @@ def _decided(sampler: Sampler, deadline: Deadline, margin: float) -> Check:
         return Check(NAME, Status.NOT_APPLICABLE, "The second variation is undefined somewhere along the curve.")
     strict = ~(second.fixed | second.pushed)
     rows = second.equalities | second.forced
-    positive = inertia.count_negative(second, strict, rows, -MARGIN, deadline)
-    if positive is not None and positive.negative == 0:
+    if inertia.count_negative(second, strict, rows, -MARGIN, deadline) == 0:
         return Check(NAME, Status.PASSED, _sentence(sampler, second, strict))
     if np.count_nonzero(strict) <= DENSE and inertia.least_quotient(second, strict, rows) > FINE_MARGIN:
         return Check(NAME, Status.PASSED, _sentence(sampler, second, strict))
     free = ~(second.fixed | second.resting)
     rows = second.equalities | second.at_limit
-    negative = inertia.count_negative(second, free, rows, margin, deadline)
-    if negative is None:
+    directions = inertia.negative_directions(second, free, rows, margin, deadline)
+    if directions is None:
         return Check(NAME, Status.NOT_APPLICABLE, "The second variation could not be decided: its matrix is singular.")
-    if negative.negative > 0 and negative.directions is not None:
+    if directions.shape[1]:
         again = replace(second, hessian=hessian_of_program(sampler.path))
-        share = min(max(inertia.proved(form, free, rows, direction) for form in (second, again))
-                    for direction in negative.directions.T)  # fmt: skip
+        share = float(np.maximum(*(inertia.quotients(form, directions) for form in (second, again))).min())
         if share < -margin:
             place = _conjugate(sampler, second, free, rows, margin, deadline)
             return Check(NAME, Status.FAILED, "A variation that keeps all conditions lowers the functional in second "
@@ -112,5 +111,5 @@ def _conjugate(sampler: Sampler, second: Second, free: Flags, rows: Flags, margi
         kept = free.copy()
         kept[where.nodes[middle, 0] if sampler.point.states else where.controls[where.first[middle], 0] :] = False
         found = inertia.count_negative(second, kept, rows, margin)
-        low, high = (low, middle) if found is not None and found.negative > 0 else (middle, high)
+        low, high = (low, middle) if found else (middle, high)
     return float(sampler.path.breaks[high])

@@ -33,6 +33,8 @@ FEW = 400
 """Up to so many variables full matrices are factorized sooner than sparse ones."""
 TOGETHER = 16
 """So many columns of the border are solved for at once."""
+MOST = 3
+"""So many negative directions are looked at where there are many variables."""
 SWEEPS = 4
 """How often a direction is put onto the constraints: each time leaves a small share of what it was off."""
 REPEATED = 1e-10
@@ -41,33 +43,78 @@ OFF = 1e-10
 """How far off them, relative to its length, a direction may stay."""
 
 
-@dataclass(frozen=True, slots=True)
-class Count:
-    """How many negative directions a quadratic form has on the kernel of constraints; columns of `directions` are near
-    the first of them."""
-
-    negative: int
-    directions: Array | None
-
-
-def count_negative(
-    second: Second, free: Flags, rows: Flags, shift: float, deadline: Deadline = FOREVER
-) -> Count | None:
+def count_negative(second: Second, free: Flags, rows: Flags, shift: float, deadline: Deadline = FOREVER) -> int | None:
     """Negative directions of hessian + shift * metric on the free variables where the rows keep their values.
 
     None where the factors are not to be trusted.  TimeoutError when the deadline passes.
     """
+    if deadline.over:
+        raise TimeoutError
+    if not free.any():
+        return 0
+    if np.count_nonzero(free) <= FEW:
+        counted = _condensed(second, free, rows, shift)
+        if counted is None:
+            _, bend, size = _on_kernel(second, free, rows)
+            counted = int((np.linalg.eigvalsh(bend + shift * size) < 0).sum())
+        return max(counted, 0)
+    bordered = _bordered(second, free, rows, shift, deadline)
+    return None if bordered is None else bordered.negative
+
+
+def negative_directions(
+    second: Second, free: Flags, rows: Flags, margin: float, deadline: Deadline = FOREVER
+) -> Array | None:
+    """Directions (columns, on all variables) that keep the rows and whose second variation is below -margin times their
+    mean square: all of few variables' kernel; else those next to the first that the penalty leaves.
+
+    None where the factors are not to be trusted.  TimeoutError when the deadline passes.
+    """
+    if np.count_nonzero(free) <= FEW:
+        kernel, bend, size = _on_kernel(second, free, rows)
+        if not kernel.shape[1]:
+            return kernel
+        quotients, vectors = eigh(bend, size)
+        return np.asarray(kernel @ vectors[:, quotients < -margin])
+    bordered = _bordered(second, free, rows, margin, deadline)
+    if bordered is None:
+        return None
+    if bordered.negative == 0:
+        return np.zeros((len(free), 0))
+    operator = LinearOperator((bordered.size,) * 2, matvec=bordered.solve, dtype=float)
+    wanted, start = min(MOST, bordered.negative), np.sin(1.0 + np.arange(bordered.size))
+    try:
+        found = eigsh(operator, wanted, which="SA", v0=start, tol=1e-4, maxiter=60)[1]
+    except ArpackError as error:
+        found = getattr(error, "eigenvectors", np.zeros((bordered.size, 0)))
+    directions = np.zeros((len(free), found.shape[1]))
+    directions[bordered.columns] = found[: len(bordered.columns)]
+    return _on_rows(second, free, rows, directions)
+
+
+def quotients(second: Second, directions: Array) -> Array:
+    """The second variation of directions relative to their mean square."""
+    bend = np.einsum("ij,ij->j", directions, second.hessian.sparse() @ directions)
+    size = np.einsum("ij,ij->j", directions, second.metric.sparse() @ directions)
+    return np.asarray(np.where(size > 0, bend / np.where(size > 0, size, 1.0), 0.0))
+
+
+@dataclass(frozen=True, slots=True)
+class _Bordered:
+    """A penalised form, in a band and its border: how many negative directions it has, its variables in order, how
+    many unknowns it has with those for rows that couple the whole curve, and its inverse."""
+
+    negative: int
+    columns: Indices
+    size: int
+    solve: Callable[[Array], Array]
+
+
+def _bordered(second: Second, free: Flags, rows: Flags, shift: float, deadline: Deadline) -> _Bordered | None:
+    """The form factorized; None where that is not to be trusted."""
     inside, border = np.flatnonzero(free & ~second.border), np.flatnonzero(free & second.border)
     near, far = np.flatnonzero(rows & ~second.long), np.flatnonzero(rows & second.long)
     columns = np.concatenate([inside, border])
-    if not len(columns):
-        return Count(0, None)
-    if deadline.over:
-        raise TimeoutError
-    if len(columns) <= FEW:
-        counted = _condensed(second, free, rows, shift)
-        if counted is not None and (counted <= 0 or shift < 0):  # only one that stands against the margin has to prove
-            return Count(max(counted, 0), None)
     jacobian, form, metric = second.jacobian.sparse(), second.hessian.sparse(), second.metric.sparse()
     local, coupling = normal(jacobian[near][:, columns]), normal(jacobian[far][:, columns])
     hessian = form[columns][:, columns] + shift * metric[columns][:, columns]
@@ -87,8 +134,6 @@ def count_negative(
         moved[:, few] = solve(side[:, few])
     rest = corner - side.T @ moved  # Schur complement of the band
     negative += int((np.linalg.eigvalsh((rest + rest.T) / 2) < 0).sum()) - coupling.shape[0]
-    if negative <= 0 or shift < 0:
-        return Count(max(negative, 0), None)
 
     def inverse(vector: Array) -> Array:
         """The whole matrix's inverse, by blocks."""
@@ -98,16 +143,7 @@ def count_negative(
         outer = np.linalg.lstsq(rest, vector[size:] - side.T @ inner, rcond=None)[0] if len(rest) else vector[size:]
         return np.concatenate([inner - solve(side @ outer), outer])
 
-    operator = LinearOperator(whole.shape, matvec=inverse, dtype=float)
-    wanted = min(3, whole.shape[0] - 1)
-    if wanted < 1:
-        return Count(negative, np.ones((len(columns), 1)))
-    start = np.sin(1.0 + np.arange(whole.shape[0]))
-    try:
-        vectors = eigsh(operator, wanted, which="SA", v0=start, tol=1e-4, maxiter=60)[1]
-    except ArpackError as error:
-        vectors = getattr(error, "eigenvectors", None)
-    return Count(negative, None if vectors is None or not vectors.size else vectors[: len(columns)])
+    return _Bordered(max(negative, 0), columns, whole.shape[0], inverse)
 
 
 def _condensed(second: Second, free: Flags, rows: Flags, shift: float) -> int | None:
@@ -162,35 +198,36 @@ def normal(jacobian: sp.csr_matrix) -> sp.csr_matrix:
 
 def least_quotient(second: Second, free: Flags, rows: Flags) -> float:
     """The least second variation relative to the mean square of a variation, on the exact kernel of the rows."""
+    kernel, bend, size = _on_kernel(second, free, rows)
+    return float(eigh(bend, size, eigvals_only=True, subset_by_index=[0, 0])[0]) if kernel.shape[1] else np.inf
+
+
+def _on_kernel(second: Second, free: Flags, rows: Flags) -> tuple[Array, Array, Array]:
+    """Directions (columns, on all variables) that span the kernel of the rows, and on it second variation and mean
+    square, this with a little added that keeps it regular."""
     columns = np.flatnonzero(free)
     jacobian = normal(second.jacobian.sparse()[np.flatnonzero(rows)][:, columns]).toarray()
     basis, triangle, _ = qr(jacobian.T, pivoting=True)
-    kernel = basis[:, np.count_nonzero(np.abs(np.diag(triangle)) > 1e-11) :]
-    if not kernel.shape[1]:
-        return np.inf
-    bend = kernel.T @ (second.hessian.sparse()[columns][:, columns] @ kernel)
-    size = kernel.T @ (second.metric.sparse()[columns][:, columns] @ kernel)
-    size += 1e-12 * np.trace(size) / len(size) * np.eye(len(size))
-    return float(eigh(bend, size, eigvals_only=True, subset_by_index=[0, 0])[0])
+    kernel = np.zeros((len(free), len(columns) - np.count_nonzero(np.abs(np.diag(triangle)) > 1e-11)))
+    kernel[columns] = basis[:, len(columns) - kernel.shape[1] :]
+    bend, size = (np.asarray(kernel.T @ (form.sparse() @ kernel)) for form in (second.hessian, second.metric))
+    return kernel, bend, size + 1e-12 * np.trace(size) / max(len(size), 1) * np.eye(len(size))
 
 
-def proved(second: Second, free: Flags, rows: Flags, direction: Array) -> float:
-    """The second variation of a direction put onto the constraints, relative to its mean square.
-
-    Zero where it cannot be put there: a direction that breaks them shows nothing.
-    """
-    columns = np.concatenate([np.flatnonzero(free & ~second.border), np.flatnonzero(free & second.border)])
+def _on_rows(second: Second, free: Flags, rows: Flags, directions: Array) -> Array:
+    """Directions (columns) put onto the constraints, without those that cannot be: what breaks them shows nothing."""
+    columns = np.flatnonzero(free)
     jacobian = normal(second.jacobian.sparse()[np.flatnonzero(rows)][:, columns])
     size, count = jacobian.shape[1], jacobian.shape[0]
     system = sp.bmat([[sp.eye(size), jacobian.T], [jacobian, -REPEATED * sp.eye(count)]], format="csc")
     try:
         solve = splu(system).solve
     except RuntimeError:
-        return 0.0
+        return directions[:, :0]
+    put = directions[columns]
     for _ in range(SWEEPS):
-        direction = direction - solve(np.concatenate([np.zeros(size), jacobian @ direction]))[:size]
-    if not np.linalg.norm(jacobian @ direction) <= OFF * np.linalg.norm(direction):
-        return 0.0
-    bend = float(direction @ (second.hessian.sparse()[columns][:, columns] @ direction))
-    size = float(direction @ (second.metric.sparse()[columns][:, columns] @ direction))
-    return bend / size if size > 0 else 0.0
+        put = put - solve(np.vstack([np.zeros_like(put), jacobian @ put]))[:size]
+    kept = np.linalg.norm(jacobian @ put, axis=0) <= OFF * np.linalg.norm(put, axis=0)
+    directions = np.zeros((len(free), np.count_nonzero(kept)))
+    directions[columns] = put[:, kept]
+    return directions

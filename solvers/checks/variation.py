@@ -43,10 +43,16 @@ def second_variation(sampler: Sampler) -> tuple[Scattered, Scattered]:
         forms.append((_condensed(trial, _bends(sampler, members, local, weights)) * units).ravel())
         norms.append((_squares(sampler, members, trial, weights) * units).ravel())
     place = np.concatenate(places)
-    hessian = Scattered(shape, place, np.concatenate(forms)).plus(_at_places(sampler))
+    hessian, metric = (_without_zeros(Scattered(shape, place, np.concatenate(parts))) for parts in (forms, norms))
+    hessian = hessian.plus(_at_places(sampler))
     numbers = np.full(len(where.parameters), sampler.value_size / unit)
-    metric = Scattered(shape, place, np.concatenate(norms))
     return hessian, metric.plus(scattered(shape, where.parameters, where.parameters, numbers))
+
+
+def _without_zeros(matrix: Scattered) -> Scattered:
+    """The same by its other entries: of many states most have nothing to do with each other."""
+    there = matrix.values != 0
+    return Scattered(matrix.shape, matrix.places[there], matrix.values[there])
 
 
 def grid_for(degree: int) -> tuple[Array, Array]:

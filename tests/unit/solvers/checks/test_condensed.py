@@ -60,9 +60,20 @@ def test_rows_that_couple_everything_take_a_direction_away():
     assert count_negative(form, rows, OWNER, PENALTY, NOISE) == whole_count(form, rows, free) == without - 1
 
 
-def test_an_interval_with_a_negative_direction_inside_is_left_to_others():
-    form = curved(2)
-    form[5, 5] = -1.0
+@pytest.mark.parametrize("inside", [[5], [1, 2, 9], [8, 9, 10, 11]])
+@pytest.mark.parametrize("seed", range(3))
+def test_negative_directions_inside_of_intervals_count_too(seed, inside):
+    form, rows = curved(seed), bound(seed + 100)
+    form[inside, inside] -= 400.0
+    assert count_negative(form, rows, OWNER, PENALTY, NOISE) == whole_count(form, rows, OWNER != FIXED)
+    assert count_negative(form, rows[:0], OWNER, PENALTY, NOISE) == whole_count(form, rows[:0], OWNER != FIXED) > 0
+
+
+def test_an_inside_that_is_singular_is_left_to_others():
+    form = curved(2) - 20.0 * np.diag(OWNER == 1)
+    block = np.ix_(OWNER == 1, OWNER == 1)
+    pivots, vectors = np.linalg.eigh(form[block])
+    form[block] -= pivots[-1] * np.outer(vectors[:, -1], vectors[:, -1])
     assert count_negative(form, np.zeros((0, len(OWNER))), OWNER, PENALTY, NOISE) is None
 
 
