@@ -37,7 +37,10 @@ WIDEST = 30.0
 """How far from the curve's own slope, in sizes of it, others are looked at."""
 TRIED = 3
 """Meshes after which a corner has to have proved itself."""
+HOPELESS = 0.1
+"""What other slopes may still gain on the first of them, relative to the functional."""
 SLOPES = 4001
+ROUNDING = 1e-14
 SAME = 1e-3
 """Slopes nearer to each other than that, relative to the range, make no corner."""
 
@@ -61,7 +64,10 @@ def with_corner(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursu
         changed = _bent(problem, path, first, second)
         if changed is None:
             continue
-        pursuit = pursue(changed, watch, deadline, meshes=TRIED)
+        pursuit = pursue(changed, watch, deadline, meshes=1)
+        if not pursuit.solved or not _left_to_gain(pursuit) <= HOPELESS:
+            continue
+        go_on(pursuit, watch, deadline, TRIED - 1)
         if _better(pursuit, base, sampler.sign):
             found.append(pursuit if pursuit.end is End.CONVERGED else go_on(pursuit, watch, deadline))
     best = min(found, key=lambda pursuit: sampler.sign * pursuit.paths[-1].value, default=None)
@@ -88,6 +94,12 @@ def _convex_in_the_slope(problem: Problem, first: float, last: float) -> bool:
     return bends and all(shape_of(condition.body, leaf, unfold).affine for condition in problem.integrals)
 
 
+def _left_to_gain(pursuit: Pursuit) -> float:
+    """What other slopes would gain, relative to the functional."""
+    with np.errstate(all="ignore"):
+        return weierstrass.check(Sampler(pursuit.paths[-1])).figure or 0.0
+
+
 def _better(pursuit: Pursuit, base: Pursuit, sign: float) -> bool:
     """Whether the value is better and no other slope would gain anything."""
     if not pursuit.solved or not sign * (pursuit.paths[-1].value - base.paths[-1].value) < 0:
@@ -109,8 +121,7 @@ def _pair(sampler: Sampler) -> tuple[float, float] | None:
     v[:, n] = slopes
     values = sampler.sign * mapped(sampler.point.value, v, d)[:, -1]
     defined = np.isfinite(values)
-    corners = _hull(slopes[defined], values[defined])
-    left, right = corners[corners <= own].max(initial=-np.inf), corners[corners > own].min(initial=np.inf)
+    left, right = _edge_over(slopes[defined], values[defined], own)
     if not np.isfinite(left + right) or right - left < SAME * 2 * reach + 2 * (slopes[1] - slopes[0]):
         return None
     if left == slopes[0] > lower or right == slopes[-1] < upper:  # the hull has no end there: the longer the better
@@ -118,17 +129,20 @@ def _pair(sampler: Sampler) -> tuple[float, float] | None:
     return float(left), float(right)
 
 
-def _hull(x: Array, y: Array) -> Array:
-    """The x of the corners of the lower convex hull of points in order (Andrew, 1979; from memory)."""
-    kept: list[int] = []
-    for k in range(len(x)):
-        while len(kept) > 1:
-            i, j = kept[-2:]
-            if (y[j] - y[i]) * (x[k] - x[i]) < (y[k] - y[i]) * (x[j] - x[i]):
-                break
-            kept.pop()
-        kept.append(k)
-    return x[kept]
+def _edge_over(x: Array, y: Array, at: float) -> tuple[float, float]:
+    """The ends of the edge of the lower convex hull of points over a place; infinite where it has none.
+
+    The line through two points, one on either side, is lowered to the point deepest below it until there is none.
+    """
+    if not len(x) or not x.min() <= at < x.max():
+        return -np.inf, np.inf
+    i, j = int(np.argmin(x)), int(np.argmax(x))
+    while True:
+        below = y - y[i] - (y[j] - y[i]) / (x[j] - x[i]) * (x - x[i])
+        deepest = int(np.argmin(below))
+        if not below[deepest] < min(below[j], 0.0) - ROUNDING * np.abs(y).max():
+            return float(x[i]), float(x[j])
+        i, j = (deepest, j) if x[deepest] <= at else (i, deepest)
 
 
 def _bent(problem: Problem, path: Trajectory, first: float, second: float) -> Problem | None:

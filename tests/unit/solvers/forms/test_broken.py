@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 
 from solvers.deadline import in_seconds
-from solvers.forms.broken import _convex_in_the_slope, _hull, with_corner
+from solvers.forms.broken import _convex_in_the_slope, _edge_over, with_corner
 from solvers.search.pursuit import pursue
 from solvers.search.structure import present_switches
 from solvers.solution import Verdict
@@ -79,7 +79,21 @@ def test_the_least_value_is_proved_and_the_corner_said():
     assert any(note.startswith("Corners were found") for note in solution.notes)
 
 
-def test_the_lower_hull():
-    x = np.array([0.0, 1.0, 2.0, 3.0, 4.0])
-    np.testing.assert_array_equal(_hull(x, np.array([0.0, 1.0, 0.5, 2.0, 0.0])), [0.0, 4.0])
-    np.testing.assert_array_equal(_hull(x, x**2), x)
+@pytest.mark.parametrize(
+    ("y", "at", "edge"),
+    [
+        ([0.0, 1.0, 0.5, 2.0, 0.0], 1.5, (0.0, 4.0)),
+        ([0.0, -1.0, 0.5, -1.5, 4.0], 1.5, (1.0, 3.0)),
+        ([0.0, 1.0, 4.0, 9.0, 16.0], 2.5, (2.0, 3.0)),
+        ([0.0, 1.0, 4.0, 9.0, 16.0], 2.0, (2.0, 3.0)),  # a corner belongs to the edge after it
+        ([0.0, 1.0, 4.0, 9.0, 16.0], 4.0, (-np.inf, np.inf)),
+    ],
+)
+def test_the_edge_of_the_lower_hull_over_a_place(y, at, edge):
+    assert _edge_over(np.arange(5.0), np.array(y), at) == edge
+
+
+def test_the_edge_over_a_place_lies_below_all_points():
+    x = np.linspace(-3.0, 3.0, 4001)
+    left, right = _edge_over(x, (x**2 - 1) ** 2 + 0.3 * x, 0.2)
+    assert (left, right) == pytest.approx((-1.0, 1.0), abs=2e-3)  # the tilt is the slope of the edge
