@@ -2,7 +2,7 @@
 
 The trees hold no unit and no text that still needs a meaning: a `Name` is the independent variable, a constant, a
 parameter, an unknown (with `order` primes), an abbreviation of `where`, or `pi`; an `At` names an unknown or an
-abbreviation and its place is one of `Problem.places`.
+abbreviation and its place is one of `Problem.places`.  The solver's own forms may hold a `SIDE` too.
 """
 
 from __future__ import annotations
@@ -14,6 +14,11 @@ from enum import Enum
 from solvers.formula.nodes import Node
 from solvers.tables.table import Table
 from solvers.units import PLAIN, Unit
+
+MIDDLE = "middle of the stretch"
+"""The name of what stands, on every stretch between two places, for its middle; no user can write it."""
+KINK = "kink"
+"""What the labels of places begin with that the solver adds where a formula has a kink; a blank follows."""
 
 
 class Seek(Enum):

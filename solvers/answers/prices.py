@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 
 from solvers.problem import Condition, Seek
 from solvers.solution import Price
-from solvers.transcription.limits import constants_of, contacts, interval_of
+from solvers.transcription.limits import constants_of, contacts, interval_of, restated
 from solvers.transcription.trajectory import Trajectory
 
 Array = NDArray[np.float64]
@@ -49,8 +49,9 @@ def _conditions(path: Trajectory, multipliers: Array) -> Iterator[Price]:
         multiplier = float(multipliers[index])
         holding = _holding(same, constants, multiplier, float(path.z[index]))
         yield from (Price(c.label, c.pointer, multiplier if c is holding else 0.0) for c in same)
-    rows = path.row_multipliers[program.rows.conditions :]
-    yield from (Price(c.label, c.pointer, float(m)) for c, m in zip(compiled.conditions, rows, strict=True))
+    rows, repeated = path.row_multipliers[program.rows.conditions :], {own for own, _, _ in restated(compiled)}
+    told = enumerate(zip(compiled.conditions, rows, strict=True))
+    yield from (Price(c.label, c.pointer, float(m)) for k, (c, m) in told if k not in repeated)
 
 
 def _holding(same: list[Condition], constants: dict[str, float], multiplier: float, value: float) -> Condition:
@@ -70,6 +71,10 @@ def _limits(path: Trajectory, multipliers: Array) -> Iterator[Price]:
     lines, worth = len(compiled.lowered.equalities), TRACE * abs(program.value_scale)
     rows = path.row_multipliers[program.rows.pointwise : program.rows.rims].reshape(-1, point.constraints or 1)
     touched = contacts(compiled, where, problem.held)
+    for again, rank, _ in restated(compiled):
+        pushed = np.zeros((1, point.constraints))
+        pushed[0, rank] = path.row_multipliers[program.rows.conditions + again]
+        rows, touched = np.vstack([rows, pushed]), np.vstack([touched, np.zeros(pushed.shape, np.int8)])
     for k, condition in enumerate(compiled.pointwise[lines:], start=lines):
         if condition.equality:
             yield Price(condition.label, condition.pointer, float(rows[:, k].sum()))

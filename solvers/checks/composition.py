@@ -19,7 +19,7 @@ import numpy as np
 
 from solvers.checks.tabulated import bounds, inside
 from solvers.formula.evaluate import REAL
-from solvers.formula.nodes import At, Call, Lookup, Name, Negative, Node, Number, Power, Product, Sum
+from solvers.formula.nodes import SIDE, At, Call, Lookup, Name, Negative, Node, Number, Power, Product, Sum
 
 INF = math.inf
 ROUNDING = 1e-12
@@ -265,7 +265,8 @@ def _lookup(node: Lookup, parts: list[Shape]) -> Shape:
 
 def _given_interval(function: str, parts: list[Shape]) -> tuple[float, float]:
     """Where a function's values lie when its arguments lie in intervals."""
-    bounded = {"sin": (-1.0, 1.0), "cos": (-1.0, 1.0), "sign": (-1.0, 1.0), "hypot": (0.0, INF), "abs": (0.0, INF)}
+    bounded = {"sin": (-1.0, 1.0), "cos": (-1.0, 1.0), "hypot": (0.0, INF), "abs": (0.0, INF)}
+    bounded |= {"sign": (-1.0, 1.0), SIDE: (-1.0, 1.0)}
     try:
         if all(part.low == part.high for part in parts):
             value = float(REAL[function](*(part.low for part in parts)))

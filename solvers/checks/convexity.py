@@ -16,7 +16,7 @@ from solvers.formula.evaluate import REAL, evaluate
 from solvers.formula.nodes import At, Name, Node
 from solvers.formula.substitute import at_place
 from solvers.observations import terminal
-from solvers.problem import Condition, Place, Problem, Seek
+from solvers.problem import MIDDLE, Condition, Place, Problem, Seek
 from solvers.solution import Check, Status
 from solvers.transcription.limits import interval_of, number
 from solvers.transcription.lowering import simple_bound
@@ -94,7 +94,7 @@ def known(problem: Problem, constants: dict[str, float], first: float, last: flo
             ranges[target] = _narrowed(condition, constants, low, high)
     numbers = {p.name: Shape(Bend.AFFINE, p.lower, p.upper) for p in problem.parameters}
     numbers |= {name: Shape(Bend.GIVEN, value, value) for name, value in constants.items()}
-    numbers[problem.independent] = Shape(Bend.GIVEN, first, last)
+    numbers[problem.independent] = numbers[MIDDLE] = Shape(Bend.GIVEN, first, last)
     numbers["pi"] = Shape(Bend.GIVEN, *[evaluate(Name("pi"), lambda name, order: 0.0, REAL)] * 2)
 
     def leaf(node: Name | At) -> Shape:

@@ -9,7 +9,7 @@ from numpy.typing import NDArray
 
 from solvers.formula.evaluate import evaluate
 from solvers.formula.nodes import Call, Lookup, Node, walk
-from solvers.problem import Problem
+from solvers.problem import MIDDLE, Problem
 from solvers.starts.sketch import ARRAYS
 from solvers.transcription.functions import Compiled
 from solvers.transcription.limits import constants_of
@@ -26,7 +26,7 @@ class Along:
         self._shape = points.shape
         problem = self._lowered.problem
         self._abbreviations = dict(problem.where)
-        self._values: dict[Quantity, Array] = {(problem.independent, 0): points}
+        self._values: dict[Quantity, Array] = {(problem.independent, 0): points, (MIDDLE, 0): points}
         numbers = constants_of(compiled) | dict(zip((p.name for p in problem.parameters), parameters, strict=True))
         self._values |= {(name, 0): np.full_like(points, number) for name, number in numbers.items()}
         self._values |= dict(zip(self._lowered.states, states.T, strict=True))

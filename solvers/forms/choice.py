@@ -11,6 +11,7 @@ from solvers.deadline import Deadline
 from solvers.forms.broken import with_corner
 from solvers.forms.first_look import at_constant_speed, first_look
 from solvers.forms.gauge import Form, Gauged
+from solvers.forms.kinks import at_kinks
 from solvers.forms.ridge import off_ridge
 from solvers.forms.signs import better_below, one_signed, positive, positive_along, where_defined
 from solvers.forms.slack import with_slacks
@@ -42,6 +43,7 @@ class Found:
 
 def solve_in_best_form(problem: Problem, watch: Watch | None, deadline: Deadline, form: Form) -> Found:
     """The form in which a problem is solved, solved; `form` makes it parametric where that can be."""
+    stated, problem = problem, at_kinks(problem)
     if problem.seek is Seek.STATIONARY:  # no jump can gain here, and Newton's method goes straighter in few variables
         pursuit = solve_as_given(with_slacks(problem), watch, deadline)
         if pursuit.end in (End.CONVERGED, End.STOPPED, End.TIME):
@@ -51,7 +53,7 @@ def solve_in_best_form(problem: Problem, watch: Watch | None, deadline: Deadline
         gauged = form(problem, lambda: look().sizes, squared)
         if gauged is None or (squared and not gauged.squared):
             continue
-        doubtful = squared and not one_signed(problem)
+        doubtful = squared and not one_signed(stated)
         if doubtful and not positive(better_below(problem) * look().integrand):
             continue
         room = deadline.within(DOUBTFUL * deadline.left) if doubtful else deadline

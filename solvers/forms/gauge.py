@@ -22,6 +22,7 @@ from collections.abc import Callable, Iterator, Mapping
 from contextlib import suppress
 from dataclasses import dataclass, replace
 
+from solvers.forms.free_kinks import at_free_places
 from solvers.forms.homogeneous import Homogeneous, OtherGrowthError
 from solvers.formula.evaluate import REAL, evaluate
 from solvers.formula.nodes import (
@@ -39,7 +40,7 @@ from solvers.formula.nodes import (
     with_children,
 )
 from solvers.formula.printer import text
-from solvers.problem import Condition, Parameter, Place, Problem, Seek, Unknown
+from solvers.problem import KINK, MIDDLE, Condition, Parameter, Place, Problem, Seek, Unknown
 from solvers.transcription.limits import number
 
 PARAMETER = "path fraction"
@@ -104,13 +105,17 @@ def in_parametric_form(problem: Problem, sizes: Sizes, squared: bool) -> Gauged 
     """The problem in parametric form, or None where that does not apply.
 
     It applies to pure variational problems of first order whose integrand grows linearly with the derivatives and that
-    name no place between the ends.
+    name no place between the ends; the solver's own at kinks are where x has their values.
     """
-    if problem.integrand is None or problem.dynamics or problem.observations or len(problem.places) != 2:
+    if problem.integrand is None or problem.dynamics or problem.observations:
         return None
+    if not all(place.label.startswith(KINK + " ") for place in problem.places[1:-1]):
+        return None
+    problem = at_free_places(problem)
     names = tuple(unknown.name for unknown in problem.unknowns)
     if any(unknown.order != 1 for unknown in problem.unknowns) or not names:
         return None
+    assert problem.integrand is not None
     form = Homogeneous(problem.independent, set(names), dict(problem.where))
     integrals = list(integrals_of(problem))
     squared = squared and problem.seek is not Seek.STATIONARY and problem.endpoint is None and not integrals
@@ -207,15 +212,17 @@ def _upright(problem: Problem, form: Homogeneous, sizes: Sizes, squared: bool) -
         constraints.append(constant_speed(rates, SPEED, "constant speed along the curve"))
         parameters.append(Parameter(SPEED, 0.0, guess=2.0))
     endpoints = [replace(c, body=_moved(c.body, problem)) for c in problem.endpoints]
-    for place, at in zip(problem.places, (ZERO, ONE), strict=True):
+    kinks = tuple(Place(Name(place.label), place.label) for place in problem.places[1:-1])
+    places = (ZERO, *(place.tree for place in kinks), ONE)
+    for place, at in zip(problem.places, places, strict=True):
         endpoints.append(tied(x, at, place, problem))
     if squared:
-        endpoints += [c for at, place in zip((ZERO, ONE), problem.places, strict=True) if infinite(problem, place)
+        endpoints += [c for at, place in zip(places, problem.places, strict=True) if infinite(problem, place)
                       for c in at_rest(names, at)]  # fmt: skip
     changed = replace(
         problem,
         independent=PARAMETER,
-        places=(Place(ZERO, "0"), Place(ONE, "1")),
+        places=(Place(ZERO, "0"), *kinks, Place(ONE, "1")),
         unknowns=tuple(unknowns),
         seek=Seek.MINIMUM if squared else problem.seek,
         integrand=Power(integrand, TWO) if squared else integrand,
@@ -243,7 +250,8 @@ def infinite(problem: Problem, place: Place) -> bool:
     """Whether the integrand is infinite at an end where all values are fixed, so that the curve is at rest there."""
     values = {c.name: c.value for c in problem.constants}
     with suppress(KeyError):  # a free place says nothing about x
-        values[problem.independent] = number(place.tree, values)
+        values[problem.independent] = values[MIDDLE] = number(place.tree, values)
+        values |= {kink.label: number(kink.tree, values) for kink in problem.places[1:-1]}
     try:
         for condition in problem.endpoints:
             body = condition.body
@@ -265,8 +273,11 @@ def infinite(problem: Problem, place: Place) -> bool:
 
 
 def _moved(tree: Node, problem: Problem) -> Node:
-    """A tree of values at places with the ends at 0 and 1."""
+    """A tree of values at places with the ends at 0 and 1, and kinks where x has their values."""
     if isinstance(tree, At):
+        inner = {place.tree: Name(place.label) for place in problem.places[1:-1]}
+        if tree.place in inner:
+            return replace(tree, place=inner[tree.place])
         first = text(tree.place) == text(problem.places[0].tree)
         return replace(tree, place=ZERO if first else ONE)
     return with_children(tree, tuple(_moved(part, problem) for part in children(tree)))
@@ -274,7 +285,7 @@ def _moved(tree: Node, problem: Problem) -> Node:
 
 def _straight(problem: Problem) -> Node:
     """x as a straight line; a free end is at the guess of its parameter."""
-    start, end = (place.tree for place in problem.places)
+    start, end = (problem.places[k].tree for k in (0, -1))
     step = Product((Name(PARAMETER), Sum((end, start), (False, True))), (False, False))
     return Sum((start, step), (False, False))
 

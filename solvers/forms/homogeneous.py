@@ -8,6 +8,7 @@ from __future__ import annotations
 from fractions import Fraction
 
 from solvers.formula.nodes import Call, Name, Negative, Node, Number, Power, Product, Sum, children, walk, with_children
+from solvers.problem import MIDDLE
 
 
 class OtherGrowthError(Exception):
@@ -103,10 +104,10 @@ class Homogeneous:
         return own == degree and not self._holds_independent(homogeneous)
 
     def _holds_independent(self, tree: Node) -> bool:
-        """Whether a tree, its abbreviations included, holds x or x'."""
+        """Whether a tree, its abbreviations included, holds x or x', or what changes with x from stretch to stretch."""
         names = {node.name for node in walk(tree) if isinstance(node, Name)}
         held = (self._holds_independent(self._where[name]) for name in names if name in self._where)
-        return self._slope.name in names or any(held)
+        return not names.isdisjoint((self._slope.name, MIDDLE)) or any(held)
 
 
 def _number(tree: Node) -> float | None:

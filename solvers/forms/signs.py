@@ -20,7 +20,7 @@ from solvers.curve import Curve
 from solvers.forms.gauge import ZERO, Gauged
 from solvers.formula.evaluate import evaluate
 from solvers.formula.nodes import At, Call, Name, Node, walk
-from solvers.problem import Condition, Problem, Seek
+from solvers.problem import MIDDLE, Condition, Problem, Seek
 from solvers.starts.sketch import ARRAYS
 from solvers.transcription.limits import number
 from solvers.transcription.trajectory import Trajectory, curve
@@ -99,6 +99,6 @@ def _along(tree: Node, problem: Problem, shape: Curve, path: Trajectory, places:
             return numbers[name]
         if name in abbreviations:
             return np.asarray(evaluate(abbreviations[name], look_up, ARRAYS))
-        return places if name == problem.independent else shape.evaluate(name + "'" * order, places)
+        return places if name in (problem.independent, MIDDLE) else shape.evaluate(name + "'" * order, places)
 
     return np.asarray(evaluate(tree, look_up, ARRAYS))

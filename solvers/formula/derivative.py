@@ -9,6 +9,7 @@ from functools import cache
 
 from solvers.formula.algebra import ONE, ZERO, add, bare, factors_of, multiply, negative, product_of, rational
 from solvers.formula.nodes import (
+    SIDE,
     At,
     Call,
     Lookup,
@@ -31,7 +32,7 @@ _PARTIALS = {
     "atan2": ("v/(u^2 + v^2)", "-u/(u^2 + v^2)"),
     "sinh": ("cosh(u)",), "cosh": ("sinh(u)",), "tanh": ("1 - tanh(u)^2",),
     "hypot": ("u/hypot(u, v)", "v/hypot(u, v)"),
-    "abs": ("sign(u)",), "sign": ("0",),
+    "abs": ("sign(u)",), "sign": ("0",), SIDE: ("0", "0"),
     "min": ("(1 - sign(u - v))/2", "(1 + sign(u - v))/2"), "max": ("(1 + sign(u - v))/2", "(1 - sign(u - v))/2"),
 }  # fmt: skip
 """The derivatives of each function of u (and v) with respect to its arguments; `sqrt` is a power."""

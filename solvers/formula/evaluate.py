@@ -6,7 +6,7 @@ import math
 from collections.abc import Callable, Mapping, Sequence
 from typing import Any
 
-from solvers.formula.nodes import At, Call, Lookup, Name, Negative, Node, Number, Power, Product, Sum, children
+from solvers.formula.nodes import SIDE, At, Call, Lookup, Name, Negative, Node, Number, Power, Product, Sum, children
 
 LookUp = Callable[[str, int], Any]
 """(name, order) -> value."""
@@ -81,7 +81,7 @@ def _sign(value: float) -> float:
 REAL: dict[str, Callable[..., Any]] = {
     **{name: getattr(math, name) for name in ("sqrt", "exp", "log", "sin", "cos", "tan", "asin", "acos", "atan")},
     **{name: getattr(math, name) for name in ("atan2", "sinh", "cosh", "tanh", "hypot")},
-    "abs": abs, "min": min, "max": max, "sign": _sign, "power": math.pow,
+    "abs": abs, "min": min, "max": max, "sign": _sign, "power": math.pow, SIDE: lambda at, place: _sign(at - place),
     "table": lambda table, orders, *arguments: table.strict_value(*arguments, orders=orders),
 }  # fmt: skip
 """The operations on plain floats; an argument outside of a function's domain raises ValueError."""

@@ -16,6 +16,10 @@ FUNCTIONS: dict[str, int] = {
 """Built-in functions and how many arguments they take (`min` and `max` take two or more)."""
 
 
+SIDE = "side"
+"""A function of a value and a place that no user can write: -1 before the place, 1 after it."""
+
+
 class Span(NamedTuple):
     """Characters `start` up to, not including, `end` of the formula's text."""
 

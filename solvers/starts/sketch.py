@@ -13,7 +13,7 @@ from numpy.polynomial import polynomial
 from numpy.typing import NDArray
 
 from solvers.formula.evaluate import evaluate
-from solvers.formula.nodes import Node
+from solvers.formula.nodes import SIDE, Node
 from solvers.observations import known_values
 from solvers.problem import Unknown
 from solvers.transcription.functions import Compiled
@@ -31,6 +31,7 @@ ARRAYS: dict[str, Callable[..., Any]] = {
     "min": lambda *values: np.minimum.reduce(np.broadcast_arrays(*values)),
     "max": lambda *values: np.maximum.reduce(np.broadcast_arrays(*values)),
     "table": lambda table, orders, *arguments: table.value(*arguments, orders=orders),
+    SIDE: lambda at, place: np.sign(at - place),
 }  # fmt: skip
 """The operations of formulas on arrays."""
 

@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from solvers.deadline import Deadline
 from solvers.forms.choice import Found
 from solvers.forms.gauge import Form, Gauged
+from solvers.forms.kinks import at_kinks
 from solvers.problem import Problem
 from solvers.search.structure import present_switches
 from solvers.sweep.neighbour import Neighbours, Solved
@@ -53,7 +54,7 @@ class Stepper:
         """The problem of one point."""
         values = dict(zip(self.names, at.tolist(), strict=True))
         constants = tuple(replace(c, value=values.get(c.name, c.value)) for c in self.problem.constants)
-        return replace(self.problem, constants=constants, sweeps=())
+        return replace(self.problem, constants=constants)
 
     def steps(self, at: Array, near: Origin, far: Origin | None, room: Deadline) -> Iterator[Step]:
         """What leads from the solution at `near`, behind which lies `far`, to `at`: one way after the other.
@@ -93,7 +94,7 @@ def _gauged(problem: Problem, neighbour: Found, form: Form) -> Gauged | None:
     if known is None:
         return None
     if known.squared:  # ends at rest depend on the values of constants
-        own = form(problem, dict, True)
+        own = form(at_kinks(problem), dict, True)
         if own is None or len(own.problem.endpoints) != len(known.problem.endpoints):
             return None
     return replace(known, original=problem, problem=replace(known.problem, constants=problem.constants))

@@ -15,10 +15,10 @@ import casadi as ca
 import numpy as np
 
 from solvers.formula.evaluate import evaluate
-from solvers.formula.nodes import At, Call, Name, Node, Number, Sum, children, walk, with_children
+from solvers.formula.nodes import SIDE, At, Call, Name, Node, Number, Sum, children, walk, with_children
 from solvers.formula.printer import text
 from solvers.observations import terminal
-from solvers.problem import Condition, Held, Place, Problem
+from solvers.problem import MIDDLE, Condition, Held, Place, Problem
 from solvers.tables.lookups import Lookups
 from solvers.transcription.derivatives import Differentiated
 from solvers.transcription.limits import number, quantity_bounds
@@ -75,7 +75,7 @@ OPERATIONS: dict[str, Operation] = {
     "asin": ca.asin, "acos": ca.acos, "atan": ca.atan, "atan2": ca.atan2,
     "sinh": ca.sinh, "cosh": ca.cosh, "tanh": ca.tanh,
     "hypot": lambda x, y: ca.sqrt(x * x + y * y), "power": lambda base, exponent: base**exponent,
-    **with_kinks(smooth_abs, smooth_sign),
+    **with_kinks(smooth_abs, smooth_sign), SIDE: lambda at, place: ca.sign(at - place),
 }  # fmt: skip
 
 
@@ -203,7 +203,8 @@ def _point_function(
     start, end, fraction = ca.SX.sym("a"), ca.SX.sym("b"), ca.SX.sym("s")
     length = end - start
     symbols = dict(zip((*lowered.states, *lowered.controls), (*_entries(x), *_entries(u)), strict=True))
-    here = Environment(lowered, symbols, numbers | {problem.independent: start + fraction * length}, lookups)
+    at = {problem.independent: start + fraction * length, MIDDLE: (start + end) / 2}
+    here = Environment(lowered, symbols, numbers | at, lookups)
     rates = [length * here.formula(Name(name, order + 1)) for name, order in lowered.states]
     zero = Number(0.0, "0")
     pointwise = [Condition(Name("?"), zero, zero, e.label, e.pointer) for e in lowered.equalities]
@@ -243,7 +244,7 @@ def _end_function(
         Environment(
             lowered,
             dict(zip(lowered.states, _entries(there), strict=True)),
-            numbers | {problem.independent: place},
+            numbers | {problem.independent: place, MIDDLE: place},
             lookups,
         )
         for there, place in zip(values, _entries(places), strict=True)

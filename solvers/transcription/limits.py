@@ -2,14 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
 
 from solvers.formula.evaluate import REAL, evaluate
-from solvers.formula.nodes import Node
+from solvers.formula.nodes import At, Node, walk
 from solvers.problem import Condition, Held
 
 if TYPE_CHECKING:
@@ -90,6 +90,10 @@ def limits(compiled: Compiled, where: Layout, rows: Rows) -> tuple[Array, Array,
     contact, needless = contacts(compiled, where, problem.held), contacts(compiled, where, problem.implied)
     floors = np.where(needless < 0, -np.inf, np.tile(pointwise[:, 0], (count, 1)))
     ceilings = np.where(needless > 0, np.inf, np.tile(pointwise[:, 1], (count, 1)))
+    for _, rank, at in restated(compiled):
+        last = int(where.first[where.at_place[at]]) - 1
+        if where.ends_on_point(last) and not contact[last, rank]:
+            floors[last, rank], ceilings[last, rank] = -np.inf, np.inf
     row_lower[rows.pointwise : rows.rims] = np.where(contact > 0, ceilings, floors).ravel()
     row_upper[rows.pointwise : rows.rims] = np.where(contact < 0, floors, ceilings).ravel()
     rims = np.array([interval_of(c, constants) for _, _, c in compiled.rims]).reshape(-1, 2)
@@ -148,6 +152,17 @@ def contacts(compiled: Compiled, where: Layout, held: tuple[Held, ...]) -> NDArr
         if compiled.reached_by(n + rank)[0] > 0 and entry >= 0 and where.ends_on_point(entry):
             sides[entry, rank] = one.side
     return sides
+
+
+def restated(compiled: Compiled) -> Iterator[tuple[int, int, int]]:
+    """The conditions at places that only repeat a pointwise constraint there: their rank, its rank, the place."""
+    for rank, constraint in enumerate(compiled.pointwise):
+        for own, condition in enumerate(compiled.conditions):
+            same = condition.pointer == constraint.pointer and condition.label == constraint.label
+            if same and (condition.lower is constraint.lower) and (condition.upper is constraint.upper):
+                tree = next(node.place for node in walk(condition.body) if isinstance(node, At))
+                places = [place.tree for place in compiled.lowered.problem.places]
+                yield own, rank, places.index(tree)
 
 
 def _along(held: Held, compiled: Compiled, where: Layout) -> Indices:

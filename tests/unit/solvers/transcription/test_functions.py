@@ -5,6 +5,7 @@ import numpy as np
 import pytest
 
 from solvers.formula.evaluate import REAL
+from solvers.formula.nodes import SIDE
 from solvers.transcription.functions import OPERATIONS, linear_controls
 from tests.unit.solvers.problems import LEAST_TIME, compiled, shape, stated
 
@@ -18,7 +19,7 @@ def test_every_operation_is_that_of_the_formulas():
     rng = np.random.default_rng(1)
     for name in OPERATIONS:
         for _ in range(5):
-            values = rng.uniform(0.1, 0.9, 2 if name in ("atan2", "hypot", "power", "min", "max") else 1)
+            values = rng.uniform(0.1, 0.9, 2 if name in ("atan2", "hypot", "power", "min", "max", SIDE) else 1)
             assert numeric(name, *values) == pytest.approx(REAL[name](*values), rel=1e-12)
     assert numeric("min", 3, 1, 2) == pytest.approx(1, abs=1e-8)
     assert numeric("max", 3, 1, 2) == pytest.approx(3, abs=1e-8)
