@@ -25,7 +25,7 @@ from solvers.forms.gauge import Gauged
 from solvers.forms.graph import as_graph, checks_on_graph, prices_of_original, uprights
 from solvers.forms.slack import SLACK
 from solvers.minimise.ipopt import FLOOR
-from solvers.problem import Problem, Seek
+from solvers.problem import KINK, Problem, Seek
 from solvers.search.chatter import chatter
 from solvers.search.escape import escapes, may_escape
 from solvers.search.record import End, Pursuit
@@ -258,6 +258,8 @@ def _notes(problem: Problem, pursuit: Pursuit, gauged: Gauged | None) -> list[st
         notes.append(gauged.note)
     if len(pursuit.problem.unknowns) > len(problem.unknowns) and gauged is None:
         notes.append("abs, max or min in the integrand: written exactly, with auxiliary unknowns that bound them.")
+    if any(place.label.startswith(KINK + " ") for place in pursuit.problem.places):
+        notes.append("Kinks of formulas that are given along the range lie on breaks of the mesh: they are exact.")
     rounded = sorted(rounded_functions(pursuit.problem))
     if rounded:
         notes.append(f"{', '.join(rounded)} in the formulas: rounded over a width of {SMOOTHING:g}, so that "

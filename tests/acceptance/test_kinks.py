@@ -87,6 +87,7 @@ def test_kinks_along_the_range_cost_nothing(members, value):
     assert found.value_error <= 1e-7 * max(abs(value), 0.1)
     assert len(found.meshes) <= 3
     assert not any("rounded" in note for note in found.notes)
+    assert any("given along the range" in note for note in found.notes)
 
 
 def test_the_price_of_an_obstacle_holds_its_push_at_the_tip():
