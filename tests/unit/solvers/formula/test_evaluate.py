@@ -5,7 +5,7 @@ from fractions import Fraction
 import pytest
 
 from solvers.formula.evaluate import REAL, evaluate
-from solvers.formula.nodes import FUNCTIONS, Name
+from solvers.formula.nodes import FUNCTIONS, SIDE, Name
 from solvers.formula.parser import parse_expression
 
 
@@ -31,7 +31,7 @@ def test_computes(formula, value):
 
 
 def test_there_is_an_operation_for_every_function():
-    assert set(REAL) == {*FUNCTIONS, "power", "table"}
+    assert set(REAL) == {*FUNCTIONS, SIDE, "power", "table"}
 
 
 def test_a_value_at_a_place_comes_from_the_caller():
