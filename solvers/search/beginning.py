@@ -31,7 +31,10 @@ DOUBTFUL_ITERATIONS = 200
 """Iterations of further tries once one start has led to a conflict."""
 FEW_ITERATIONS = 100
 """Iterations within which a solve from a related trajectory must be through: it starts near its end."""
-FALLING: tuple[dict[str, Any], int] = {"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 1e-3}, FEW_ITERATIONS
+FALLING: tuple[dict[str, Any], int] = (
+    {"ipopt.mu_strategy": "monotone", "ipopt.mu_init": 1e-3, "ipopt.tol": 1e-10},  # the last steps to 1e-12 may stall
+    FEW_ITERATIONS,
+)
 ADAPTING: tuple[dict[str, Any], int] = {}, 60
 """What is tried from a related trajectory, and how long.  An adaptive barrier needs a third fewer iterations, but now
 and then it does not come to an end, and where controls are loose it does not keep to the middle of what they may do."""

@@ -56,9 +56,10 @@ def sharpen(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit |
     path = base.paths[-1]
     if not limited(path):
         return None
-    found = []
+    found: list[Pursuit] = []
+    tried: list[Problem] = []
     for seen in _calmed(base, watch, deadline):
-        sharp = with_structure(base, seen, watch, deadline)
+        sharp = with_structure(base, seen, watch, deadline, tried)
         for _ in range(ROUNDS):
             if sharp is None or sharp.done or _suffices(sharp):
                 break
@@ -71,7 +72,10 @@ def sharpen(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit |
         if sharp is not None:
             found.append(sharp)
     best = min(found, key=lambda pursuit: (not pursuit.done, pursuit.value_error), default=None)
-    return None if best is None else _with_more_switches(base, best, watch, deadline)
+    if best is None:
+        return None
+    more = _with_more_switches(base, best, watch, deadline)
+    return go_on(best, watch, deadline, 4) if more is best and _chatters(best) else more
 
 
 def _suffices(sharp: Pursuit) -> bool:
@@ -92,8 +96,12 @@ def _calmed(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Iterator[
             yield calm.paths[-1]
 
 
-def with_structure(base: Pursuit, path: Trajectory, watch: Watch | None, deadline: Deadline) -> Pursuit | None:
+def with_structure(
+    base: Pursuit, path: Trajectory, watch: Watch | None, deadline: Deadline, tried: list[Problem] | None = None
+) -> Pursuit | None:
     """Read switches off a path and solve with them; None where there are none or the answer is not believable.
+
+    Nor is the first structure solved again where it is one of those that were `tried`; it becomes one of them.
 
     What turns out to be held wrongly is let go, unless an arc that the mesh may have seen as two does as one.  A switch
     that ends at the edge of the room it was given is looked at again from there, and left out if it does so again: the
@@ -116,10 +124,14 @@ def with_structure(base: Pursuit, path: Trajectory, watch: Watch | None, deadlin
         same = alike(changed, seen)
         if same and (again or not at_the_edge(path)):
             break
+        if tried is not None and pursuit is None and any(alike(changed, other) for other in tried):
+            break
         again, one = same, None
         now = pursue(changed, watch, deadline, meshes=2, start=path, mesh=mesh_between(changed, path))
         if not now.solved:
             break
+        if tried is not None:
+            tried.append(changed)
         path = now.paths[-1]
         seen = changed
         if at_the_edge(path):
@@ -135,9 +147,14 @@ def with_structure(base: Pursuit, path: Trajectory, watch: Watch | None, deadlin
         pursuit = now
         if now.end is End.CONVERGED or not slow(now):
             break
-    if pursuit is None or pursuit.end is End.CONVERGED:
+    if pursuit is None or pursuit.end is End.CONVERGED or _chatters(pursuit):
         return pursuit
     return go_on(pursuit, watch, deadline, 4)
+
+
+def _chatters(pursuit: Pursuit) -> bool:
+    """Whether finer meshes would only show more of a chattering: the error hardly falls, and one more switch fits."""
+    return slow(pursuit) and one_more(pursuit.paths[-1]) is not None
 
 
 def _helps(now: Pursuit, base: Pursuit) -> bool:
