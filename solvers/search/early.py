@@ -68,9 +68,15 @@ def _clear_structure(base: Pursuit, linear: list[Quantity]) -> Problem | None:
 
 
 def _without_unseen(path: Trajectory, found: list[Switch]) -> list[Switch]:
-    """Two switches with hardly a point between them as one: what the mesh blurs between two arcs is no third one."""
+    """Two switches with hardly a point between them as one: what the mesh blurs between two arcs is no third one.
+
+    A switch with hardly a point between it and an end of the range is none: it may lie at that end just as well.
+    """
+    first, end = float(path.places[0]), float(path.places[-1])
     kept: list[Switch] = []
     for switch in found:
+        if min(_points_between(path, first, switch.place), _points_between(path, switch.place, end)) < LEAST_POINTS:
+            continue
         last = kept[-1] if kept else None
         apart = last is None or {last.touching, last.bent, switch.touching, switch.bent} != {None}
         if last is None or apart or _points_between(path, last.place, switch.place) >= LEAST_POINTS:

@@ -8,7 +8,7 @@ from typing import Any
 import numpy as np
 
 from solvers.deadline import Deadline
-from solvers.minimise.ipopt import WARM, Minimum, Start
+from solvers.minimise.ipopt import WARM, Minimum, Outcome, Start
 from solvers.problem import Problem
 from solvers.search import refinement
 from solvers.search.attempt import SOLVED, end_of, loose, make_program
@@ -16,14 +16,14 @@ from solvers.search.beginning import FEW_ITERATIONS, begin, begin_from
 from solvers.search.corners import at_corners
 from solvers.search.effort import Minimiser
 from solvers.search.record import End, Pursuit
-from solvers.search.settling import estimate_errors, settled
+from solvers.search.settling import estimate_errors, settled, worth_of_misses
 from solvers.solution import Watch
 from solvers.transcription.functions import compile_problem
 from solvers.transcription.layout import Layout, layout
 from solvers.transcription.lowering import lower
 from solvers.transcription.mesh import Mesh
 from solvers.transcription.program import Program
-from solvers.transcription.trajectory import Trajectory, carry, trajectory
+from solvers.transcription.trajectory import Trajectory, as_start, carry, trajectory
 
 MESHES = 24
 GROWTH = 2.5
@@ -115,8 +115,16 @@ def _with_corners(mesh: Mesh, path: Trajectory, points: int) -> Mesh:
 
 
 def _add(pursuit: Pursuit, minimise_: Minimiser, program: Program, minimum: Minimum) -> None:
-    """Take a solved mesh in: its trajectory, its errors, its sign of life."""
+    """Take a solved mesh in: its trajectory, its errors, its sign of life.
+
+    Where the minimiser was content too early for the value, it goes on.
+    """
     path = trajectory(program, minimum)
+    size = max(abs(path.value), abs(program.value_scale))
+    if minimum.outcome is Outcome.ACCEPTABLE and worth_of_misses(path) > pursuit.problem.options.tolerance * size:
+        further = minimise_(program, as_start(path), {"ipopt.acceptable_iter": 0, "ipopt.max_iter": FEW_ITERATIONS})
+        if further.outcome is Outcome.SOLVED:
+            minimum, path = further, trajectory(program, further)
     found = refinement.estimate(path)
     pursuit.paths.append(path)
     pursuit.estimates.append(found)

@@ -11,12 +11,14 @@ from solvers.search import refinement
 from solvers.search.record import End, Pursuit
 from solvers.solution import Finding
 from solvers.transcription.lowering import primed
-from solvers.transcription.trajectory import distance
+from solvers.transcription.trajectory import Trajectory, distance
 
 CURVE_ROOM = 100.0
 """How much more than the tolerance the curve may still have moved: a switch that hardly matters moves freely."""
 LEAST_GAIN = 0.005
 """How much of the last change of the value counts as its error at the least, however much the mesh has improved."""
+ROOT = 3
+"""The value may grow as fast as the third root of what is missing of the conditions, where no curve reaches beyond."""
 TORN_MESHES = 4
 """So many meshes in a row ..."""
 TORN_ERROR = 0.05
@@ -30,15 +32,30 @@ def estimate_errors(pursuit: Pursuit, found: refinement.Estimate) -> None:
     """Errors of value and curve from the last two meshes: their difference, and how much the mesh has improved since.
 
     The difference alone is the error of the mesh before; local errors that fell by a factor f let the value's error
-    fall at least by f.  What the curve gains by leaving limits between the points is seen on one mesh alone.
+    fall at least by f.  What the curve gains by leaving limits between the points is seen on one mesh alone, and so is
+    what it gains by what the minimiser left of the conditions.
     """
     now, before = pursuit.paths[-1], pursuit.paths[-2]
     last = pursuit.steps[-2].error or 0.0
     gain = float(np.clip(found.worst / last, LEAST_GAIN, 1.0)) if last > 0 else 1.0
     size = max(abs(now.value), abs(now.program.value_scale))
     change = abs(now.value - before.value)
-    pursuit.value_error = 2 * gain * change + size * found.worst**2 + FLOOR * size + found.gained
+    own = 2 * gain * change + size * found.worst**2 + FLOOR * size
+    pursuit.value_error = own + found.gained + worth_of_misses(now)
     pursuit.curve_error = gain * distance(now, before) + found.worst
+
+
+def worth_of_misses(path: Trajectory) -> float:
+    """What the value may gain (SI) by what the minimiser missed of the conditions: how far, times their multipliers.
+
+    That is nothing unless multipliers are huge.  So they are at abnormal extremals, whose end lies at the rim of what
+    can be reached: near there the value V grows like a root of the distance d, and for V = d^(1/p) its whole change is
+    p times its slope times d.  Reference: Bryson, Ho (1975), Applied Optimal Control, section 2.4 (from memory).
+    """
+    program = path.program
+    values = program.numbers.constraints(path.z / program.scale)
+    missed = np.maximum(np.maximum(program.row_lower - values, values - program.row_upper), 0.0)
+    return ROOT * float(missed @ np.abs(path.row_multipliers * program.row_scale))
 
 
 def settled(pursuit: Pursuit) -> End | None:

@@ -101,7 +101,10 @@ CASES = {
     "a first guess of little": oscillator(2, 1, [0.01, 40]),
     "another": oscillator(2, 1, [0.1, 40]),
     "five half turns": oscillator(10, 1, [0.1, 40]),
-    "a switch just at the start": oscillator(6, 0, [0.1, 40], LEAST | OPEN),
+    # whole half turns reach no farther: abnormal, the least time grows like the root of the distance beyond
+    "just two half turns": oscillator(4, 0, [0.1, 40]),
+    "just three": oscillator(6, 0, [0.1, 40]),
+    "just four": oscillator(8, 0, [0.1, 40]),
     "a limit cycle left": to_rest("(1 - y^2)*v - y + u", 1, 1, [0.01, 40], None),
     "just before the conjugate point": (swings(1 - 1e-4), 0.0, LEAST),
     "just behind it": (swings(1 + 1e-4), None, NONE),

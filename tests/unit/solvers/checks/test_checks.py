@@ -1,11 +1,12 @@
 """All checks together: their order, their manners, and what becomes of one that breaks."""
 
+import numpy as np
 import pytest
 
 from solvers import checks
 from solvers.checks import curvature, stationarity
 from solvers.deadline import in_seconds
-from solvers.solution import Status
+from solvers.solution import Check, Status
 
 LINE = {
     "independent": {"name": "x", "from": 0, "to": 1},
@@ -31,6 +32,19 @@ def test_a_check_that_breaks_has_failed_and_says_why(solved, monkeypatch):
     assert found["stationarity"].status is Status.FAILED
     assert "ZeroDivisionError: oh" in found["stationarity"].sentence
     assert found["motion"].status is Status.PASSED
+
+
+def test_what_failed_checks_leave_open_counts_but_for_what_errors_say_already():
+    def made(name, status, figure=None):
+        return Check(name, status, "", figure, 1e-3)
+
+    fine = [made("motion", Status.PASSED, 1e-9), made("corners", Status.NOT_APPLICABLE)]
+    assert checks.left_open([*fine, made("refinement", Status.FAILED, 0.5), made("Legendre", Status.FAILED, 2.0)]) == 0
+    assert checks.left_open([*fine, made("stationarity", Status.FAILED, 0.2)]) == 0.2
+    assert checks.left_open(
+        [made("motion", Status.FAILED, 0.1), made("free ends", Status.FAILED, 0.2)]
+    ) == pytest.approx(0.3)
+    assert checks.left_open([made("motion", Status.FAILED)]) == np.inf
 
 
 def test_without_time_nothing_passes(solved):

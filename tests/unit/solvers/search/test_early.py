@@ -1,11 +1,13 @@
 """Switches that coarse meshes show, against closed forms; what these do not show clearly is left to more effort."""
 
+import numpy as np
 import pytest
 
 from solvers.deadline import in_seconds
 from solvers.search.early import sharpened_early
 from solvers.search.pursuit import pursue
 from solvers.search.record import End
+from solvers.search.settling import worth_of_misses
 from solvers.search.structure import present_switches
 from tests.unit.solvers.problems import regulator, shape, stated
 from tests.unit.solvers.search.test_sharpen import CLOSED_FORMS
@@ -34,6 +36,24 @@ def test_without_switches_plain_meshes_go_on(problem):
     found, base = sharpened(problem)
     assert found is None
     assert base.end is End.CONVERGED
+
+
+def test_a_blurred_point_at_an_end_is_no_arc_and_an_abnormal_end_is_known_less_well():
+    """x'' = -x + u, |u| <= 1, from 6 to rest: three half turns (Bushaw, 1958; from memory), with none to spare.
+
+    Whole half turns reach no farther, so that to second order the end stays where it is when the switches move: the
+    multipliers grow without bound, and the least time falls like the root of what is missed of the end.
+    """
+    found, _ = sharpened(stated(
+        independent={"name": "t", "from": 0, "to": "T"}, parameters={"T": {"within": [0.1, 40]}},
+        unknowns={"x": {}, "v": {}, "u": {"within": [-1, 1]}}, dynamics=["x' = v", "v' = u - x"],
+        functional={"seek": "minimum", "endpoint": "T"},
+        endpoints=["x(0) = 6", "v(0) = 0", "x(T) = 0", "v(T) = 0"],
+    ))  # fmt: skip
+    path = found.paths[-1]
+    assert [switch.place for switch in present_switches(path)] == pytest.approx([np.pi, 2 * np.pi], abs=1e-5)
+    assert abs(path.value - 3 * np.pi) <= found.value_error <= 1e-6 * path.value
+    assert worth_of_misses(path) > 0.5 * found.value_error
 
 
 def test_a_structure_that_lacks_an_arc_is_refused():
