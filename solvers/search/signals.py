@@ -121,8 +121,8 @@ def _changes(path: Trajectory, signal: Signal | Contact, linear: Sequence[Quanti
     passage stays.  A state that is at its limit for a point or two only touches it there.
     """
     bent = not signal.state and signal.quantity not in linear
-    states = path.program.compiled.lowered.states
-    smooth = signal.state and (signal.quantity[0], signal.quantity[1] + 1) in states
+    lowered = path.program.compiled.lowered
+    smooth = signal.quantity in lowered.states and lowered.slope_of(signal.quantity) is not None
     labels, points, where = signal.labels, path.points, path.program.layout
     span = float(np.ptp(path.places))
     owner = np.repeat(np.arange(len(where.first) - 1), np.diff(where.first))

@@ -118,10 +118,12 @@ def _without_contradiction(kept: list[Switch], spots: list[Spot], held: tuple[He
 
 
 def _without_needless(kept: list[Switch], spots: list[Spot], held: tuple[Held, ...]) -> list[Switch] | None:
-    """Fewer switches where one has the same on both sides."""
+    """Fewer switches where one has the same on both sides, unless a state touches its limit there and leaves it."""
     for index, (at, place) in enumerate(spots):
-        same = on_limits(held, index - 1) == on_limits(held, index)
-        if isinstance(place, Switch) and place.touching is None and same:
+        before, after = on_limits(held, index - 1), on_limits(held, index)
+        if not isinstance(place, Switch) or before != after:
+            continue
+        if place.touching is None or (*place.touching[0], place.touching[1]) in after:
             return [switch for switch in kept if switch.place != at]
     return None
 

@@ -15,6 +15,7 @@ from solvers.problem import Condition, Held
 if TYPE_CHECKING:
     from solvers.transcription.functions import Compiled
     from solvers.transcription.layout import Layout, Rows
+    from solvers.transcription.lowering import Lowered, Quantity
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]
@@ -70,11 +71,11 @@ def limits(compiled: Compiled, where: Layout, rows: Rows) -> tuple[Array, Array,
             _leave_out(implied, compiled, where, lower, upper)
     for touch in problem.touches:
         node = where.at_place[[place.label for place in problem.places].index(touch.place)]
-        states = compiled.lowered.states
-        at = where.nodes[node, states.index((touch.name, touch.order))]
+        touched = (touch.name, touch.order)
+        at = where.nodes[node, compiled.lowered.states.index(touched)]
         lower[at] = upper[at] = lower[at] if touch.side < 0 else upper[at]
-        slope = where.nodes[node, states.index((touch.name, touch.order + 1))]
-        lower[slope] = upper[slope] = 0.0
+        for slope in _slopes(compiled.lowered, touched)[:1]:
+            lower[where.nodes[node, slope]] = upper[where.nodes[node, slope]] = 0.0
     for parameter, index in zip(problem.parameters, where.parameters, strict=True):
         lower[index], upper[index] = parameter.lower, parameter.upper
     for place, index in zip(problem.places, where.places, strict=True):
@@ -118,11 +119,18 @@ def _hold(held: Held, compiled: Compiled, where: Layout, lower: Array, upper: Ar
         return
     inside = _along(held, compiled, where)
     lower[inside] = upper[inside] = side[inside]
-    start = where.at_place[held.stretch]
-    for index, (name, order) in enumerate(lowered.states):
-        if name == held.name and order > held.order:
-            at = where.nodes[start, index]
-            lower[at] = upper[at] = 0.0
+    start = where.nodes[where.at_place[held.stretch], _slopes(lowered, quantity)]
+    lower[start] = upper[start] = 0.0
+
+
+def _slopes(lowered: Lowered, state: Quantity) -> list[int]:
+    """The states that are derivatives of one, in their order, by where they stand among all."""
+    found: list[int] = []
+    slope = lowered.slope_of(state)
+    while slope is not None and lowered.states.index(slope) not in found:
+        found.append(lowered.states.index(slope))
+        slope = lowered.slope_of(slope)
+    return found
 
 
 def _leave_out(implied: Held, compiled: Compiled, where: Layout, lower: Array, upper: Array) -> None:

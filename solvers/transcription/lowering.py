@@ -31,6 +31,14 @@ class Lowered:
     given: dict[Quantity, Node]
     equalities: tuple[Equation, ...]
 
+    def slope_of(self, state: Quantity) -> Quantity | None:
+        """The state that is the derivative of another, by its primes or by the dynamics (x' = v), if any is."""
+        slope = (state[0], state[1] + 1)
+        right = self.given.get(slope)
+        if isinstance(right, Name):
+            slope = (right.name, right.order)
+        return slope if slope in self.states else None
+
 
 def lower(problem: Problem) -> Lowered:
     """Give every derivative its role."""
