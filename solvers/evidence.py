@@ -106,8 +106,8 @@ def with_evidence(
                       known=known, sampler=sampler)  # fmt: skip
     if conditions.NAME not in known and np.isfinite(taken := conditions.value_anew(sampler)):
         value_error += abs(taken - value)
-    if open_ := checks.left_open(made):
-        value_error += open_ * sampler.value_size
+    if left_open := checks.left_open(made):
+        value_error += left_open * max(abs(value), abs(path.program.value_scale))
     diagnosis = with_feasibility(diagnosis, made)
     verdict = judge(problem.seek, made, pursuit.end)
     if verdict in PROVED and pursuit.end is End.TIME and may_escape(pursuit):
