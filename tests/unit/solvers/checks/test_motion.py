@@ -99,3 +99,19 @@ def test_dynamics_that_blow_up_small_changes_are_looked_at_along_the_curve(sketc
     assert "blow up small changes" in check.sentence
     check = examine(motion.check, sketched(unstable, [lambda t: t], [lambda t: 1 + 1e-3 * t], intervals=2))
     assert check.status is Status.FAILED
+
+
+def test_an_end_that_is_not_the_curves_own_is_found_out_by_the_rates_too(sketched, examine):
+    """Where the dynamics blow up small changes only the curve itself is looked at, and that must go on to its end."""
+    unstable = {
+        "independent": {"name": "t", "from": 0, "to": 1},
+        "unknowns": {"x": {}, "u": {}},
+        "dynamics": ["x' = 200*(x - t) + u"],
+        "functional": {"seek": "minimum", "integrand": "u^2"},
+        "endpoints": ["x(0) = 0"],
+    }
+    path = sketched(unstable, [lambda t: t], [lambda t: 1.0 + 0 * t], intervals=2)
+    nodes = path.nodes.copy()
+    nodes[-1] += 1e-3
+    assert examine(motion.check, path).status is Status.PASSED
+    assert examine(motion.check, replace(path, nodes=nodes)).status is Status.FAILED
