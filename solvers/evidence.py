@@ -264,8 +264,9 @@ def _notes(problem: Problem, pursuit: Pursuit, gauged: Gauged | None) -> list[st
         notes.append("Kinks of formulas that are given along the range lie on breaks of the mesh: they are exact.")
     rounded = sorted(rounded_functions(pursuit.problem))
     if rounded:
-        notes.append(f"{', '.join(rounded)} in the formulas: rounded over a width of {SMOOTHING:g}, so that "
-                     "derivatives exist. What that may change of the value is part of its error.")  # fmt: skip
+        notes.append(f"{', '.join(rounded)} in the formulas: rounded over {SMOOTHING:g} of the size of their "
+                     "arguments, so that derivatives exist. What that may change of the value is part of its "
+                     "error.")  # fmt: skip
     notes += table_notes(pursuit.paths[-1])
     crowd = None if gauged is not None else chatter(pursuit.paths[-1])
     if crowd is not None and crowd.steady:

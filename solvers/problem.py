@@ -285,6 +285,7 @@ class Problem:
     implied: tuple[Held, ...] = ()  # the same: states that rest on a limit because of what is held there
     touches: tuple[Touch, ...] = ()  # the same
     calm: tuple[Calm, ...] = ()  # the same
+    widths: tuple[tuple[Node, float], ...] = ()  # the same: of the rounding of each kink (SI)
     start: Variation = field(default_factory=Variation)  # the same
     continuation: Continuation | None = None
     sweeps: tuple[Sweep, ...] = ()  # none, one, or two whose values make a grid

@@ -37,6 +37,14 @@ class Along:
         with np.errstate(all="ignore"):
             return np.broadcast_to(np.array(evaluate(tree, self._look_up, ARRAYS), dtype=np.float64), self._shape)
 
+    def size(self, tree: Node) -> Array:
+        """As large as a formula is: what is at places is taken for what runs along the curve, integrals for means."""
+        span = float(np.ptp(self._values[self._lowered.problem.independent, 0]))
+        rough = ARRAYS | {"integral": lambda body: np.mean(body) * span}
+        with np.errstate(all="ignore"):
+            value = evaluate(tree, self._look_up, rough, lambda name, order, place, side: self._look_up(name, order))
+            return np.broadcast_to(np.array(value, dtype=np.float64), self._shape)
+
     def _look_up(self, name: str, order: int) -> Array:
         if name in self._abbreviations:
             return self.value(self._abbreviations[name])

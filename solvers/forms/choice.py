@@ -21,6 +21,7 @@ from solvers.search.at_bound import at_bound
 from solvers.search.given import solve_as_given
 from solvers.search.pursuit import go_on
 from solvers.search.record import End, Pursuit
+from solvers.search.widths import with_widths
 from solvers.solution import Watch
 
 LOST = (End.FAILED, End.UNDEFINED)
@@ -45,7 +46,7 @@ def solve_in_best_form(problem: Problem, watch: Watch | None, deadline: Deadline
     """The form in which a problem is solved, solved; `form` makes it parametric where that can be."""
     stated, problem = problem, at_kinks(problem)
     if problem.seek is Seek.STATIONARY:  # no jump can gain here, and Newton's method goes straighter in few variables
-        pursuit = solve_as_given(with_slacks(problem), watch, deadline)
+        pursuit = solve_as_given(with_slacks(with_widths(problem)), watch, deadline)
         if pursuit.end in (End.CONVERGED, End.STOPPED, End.TIME):
             return Found(pursuit, None)
     look = cache(lambda: first_look(problem))
@@ -58,10 +59,10 @@ def solve_in_best_form(problem: Problem, watch: Watch | None, deadline: Deadline
             continue
         room = deadline.within(DOUBTFUL * deadline.left) if doubtful else deadline
         gauged = gauged if gauged.squared else at_constant_speed(gauged, look())
-        pursuit = solve_as_given(with_slacks(gauged.problem), watch, room)
+        pursuit = solve_as_given(with_slacks(with_widths(gauged.problem)), watch, room)
         if squared and pursuit.end in LOST and gauged.graph:  # its square has values where a root has none
             gauged = where_defined(at_constant_speed(gauged, look()))
-            pursuit = solve_as_given(with_slacks(gauged.problem), watch, room)
+            pursuit = solve_as_given(with_slacks(with_widths(gauged.problem)), watch, room)
         if squared and pursuit.solved and not rightly_squared(gauged, pursuit, doubtful):
             if (best := at_bound(problem, pursuit)) is not None:
                 return Found(best, None)
@@ -70,7 +71,7 @@ def solve_in_best_form(problem: Problem, watch: Watch | None, deadline: Deadline
             pursuit = go_on(pursuit, watch, deadline)
         if (pursuit.solved and pursuit.end is not End.TORN) or pursuit.end in (End.STOPPED, End.TIME):
             return Found(pursuit, gauged)
-    pursuit = solve_as_given(with_slacks(problem), watch, deadline)
+    pursuit = solve_as_given(with_slacks(with_widths(problem)), watch, deadline)
     return Found(off_ridge(pursuit, watch, deadline) or with_corner(pursuit, watch, deadline) or pursuit, None)
 
 

@@ -7,11 +7,11 @@ term is to be large, the same holds for min(a, b) with s <= a and s <= b.  Elsew
 
 from __future__ import annotations
 
-from collections.abc import Mapping
 from dataclasses import replace
 
 from solvers.formula.nodes import Call, Name, Negative, Node, Number, Product, Sum
 from solvers.problem import Condition, Problem, Seek, Unknown
+from solvers.transcription.functions import SMOOTHING
 
 SLACK = "slack"
 """What the names of the added unknowns begin with; a blank follows, so that no user can write one."""
@@ -21,7 +21,7 @@ def with_slacks(problem: Problem) -> Problem:
     """The problem with such terms of its integrand in slack form; the same problem where there are none."""
     if problem.integrand is None or problem.seek is Seek.STATIONARY:
         return problem
-    slacks = _Slacks({c.name: c.value for c in problem.constants})
+    slacks = _Slacks(problem)
     integrand = slacks.exact(problem.integrand, problem.seek is Seek.MINIMUM)
     if not slacks.unknowns:
         return problem
@@ -32,10 +32,11 @@ def with_slacks(problem: Problem) -> Problem:
 class _Slacks:
     """The unknowns and constraints that stand for functions with kinks."""
 
-    def __init__(self, constants: Mapping[str, float]) -> None:
+    def __init__(self, problem: Problem) -> None:
         self.unknowns: list[Unknown] = []
         self.constraints: list[Condition] = []
-        self._constants = constants
+        self._constants = {c.name: c.value for c in problem.constants}
+        self._sizes = {use: width / SMOOTHING for use, width in problem.widths}
 
     def exact(self, tree: Node, least: bool) -> Node:
         """A part of the integrand with its kinks replaced; `least` says that what it is worth is to be small."""
@@ -73,7 +74,9 @@ class _Slacks:
     def _slack(self, kink: Call, above: bool) -> Name:
         """The unknown that is nowhere below, or nowhere above, any branch of a kink."""
         slack = Name(f"{SLACK} {len(self.unknowns) + 1}")
-        self.unknowns.append(Unknown(slack.name, 0))
+        size = self._sizes.get(kink)
+        guess = None if size is None else Number(size if above else -size, "")
+        self.unknowns.append(Unknown(slack.name, 0, guess=guess))
         branches = [(argument, True) for argument in kink.arguments]
         if kink.function == "abs":
             branches.append((kink.arguments[0], False))

@@ -17,6 +17,7 @@ from solvers.search.corners import at_corners
 from solvers.search.effort import Minimiser
 from solvers.search.record import End, Pursuit
 from solvers.search.settling import estimate_errors, settled, worth_of_misses
+from solvers.search.widths import with_widths
 from solvers.solution import Watch
 from solvers.transcription.functions import compile_problem
 from solvers.transcription.layout import Layout, layout
@@ -63,6 +64,7 @@ def pursue(
     From a trajectory of a related form where one is given; then a single attempt is made where it is also said within
     how many `iterations`.
     """
+    problem = with_widths(problem)
     compiled = compile_problem(lower(problem))
     pursuit = Pursuit(problem, compiled)
     minimiser = Minimiser(pursuit, watch, deadline)

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, replace
+from functools import partial
 from itertools import pairwise
 from math import pi
 
@@ -27,29 +28,43 @@ from solvers.transcription.lowering import Lowered, Quantity, simple_bound
 Operation = Callable[..., ca.SX]
 
 SMOOTHING = 1e-9
-"""Width, relative to one, over which `abs` and its kin are rounded so that they have derivatives."""
+"""Width, relative to the size of the argument, over which `abs` and its kin are rounded so that they have derivatives.
+
+Of an argument whose size is not known it is the width itself.
+"""
+
+SHARP = 1e-40
+"""A width (SI) beyond anything that a curve shows, and far above the least of numbers when squared."""
+
+WITHIN = " within"
+"""What the names of rounded functions end with whose first argument is the width."""
 
 
-def smooth_abs(x: ca.SX) -> ca.SX:
-    """The rounded absolute value."""
-    return ca.sqrt(x * x + SMOOTHING**2)
+def smooth_abs(width: ca.SX, x: ca.SX) -> ca.SX:
+    """The absolute value, rounded over a width."""
+    return ca.sqrt(x * x + width * width)
 
 
-def smooth_sign(x: ca.SX) -> ca.SX:
-    """The rounded sign."""
-    return x / smooth_abs(x)
+def smooth_sign(width: ca.SX, x: ca.SX) -> ca.SX:
+    """The sign, rounded over a width."""
+    return x / smooth_abs(width, x)
 
 
 def with_kinks(absolute: Operation, sign: Operation) -> dict[str, Operation]:
-    """The functions with kinks, made of an absolute value and a sign."""
+    """The functions with kinks, made of an absolute value and a sign that take a width first; with and without one."""
 
-    def least(*values: ca.SX) -> ca.SX:
+    def least(width: ca.SX, *values: ca.SX) -> ca.SX:
         least = values[0]
         for value in values[1:]:
-            least = (least + value - absolute(least - value)) / 2
+            least = (least + value - absolute(width, least - value)) / 2
         return least
 
-    return {"abs": absolute, "sign": sign, "min": least, "max": lambda *values: -least(*(-value for value in values))}
+    def most(width: ca.SX, *values: ca.SX) -> ca.SX:
+        return -least(width, *(-value for value in values))
+
+    made = {"abs": absolute, "sign": sign, "min": least, "max": most}
+    given = {name + WITHIN: operation for name, operation in made.items()}
+    return given | {name: partial(operation, ca.SX(SMOOTHING)) for name, operation in made.items()}
 
 
 ROUNDED = frozenset({"abs", "min", "max", "sign"})
@@ -65,9 +80,20 @@ def nodes_of(problem: Problem) -> Iterator[Node]:
     yield from (node for tree in trees for node in walk(tree))
 
 
+def bent_uses(problem: Problem) -> list[Call]:
+    """All uses of functions with kinks in the formulas of a problem without arcs: they are rounded."""
+    uses = (node for node in nodes_of(problem) if isinstance(node, Call) and node.function in ROUNDED)
+    return list(dict.fromkeys(uses))
+
+
 def rounded_functions(problem: Problem) -> set[str]:
-    """The functions with kinks in the formulas of a problem without arcs: they are rounded."""
-    return {node.function for node in nodes_of(problem) if isinstance(node, Call)} & ROUNDED
+    """The names of these functions."""
+    return {use.function for use in bent_uses(problem)}
+
+
+def without_rounding(problem: Problem) -> Problem:
+    """The problem with kinks that are all but sharp, to be looked at from afar."""
+    return replace(problem, widths=tuple((use, SHARP) for use in bent_uses(problem)))
 
 
 OPERATIONS: dict[str, Operation] = {
@@ -151,13 +177,23 @@ class Environment:
         self._symbols = dict(symbols)
         self._numbers = dict(numbers)
         self._abbreviations = dict(lowered.problem.where)
+        self._widths = dict(lowered.problem.widths)
         self._operations = OPERATIONS | lookups.operations
         self._value_at = value_at
 
     def formula(self, tree: Node) -> ca.SX:
         """The tree as an expression of the symbols."""
+        tree = self._rounded(tree) if self._widths else tree
         value = evaluate(tree, self._look_up, self._operations, self._value_at)
         return value if isinstance(value, ca.SX) else ca.SX(value)  # a copy would cost more than a sum
+
+    def _rounded(self, tree: Node) -> Node:
+        """The tree with their widths for the functions with kinks that have one."""
+        parts = tuple(self._rounded(part) for part in children(tree))
+        if tree in self._widths:
+            assert isinstance(tree, Call)
+            return Call(tree.function + WITHIN, (Number(self._widths[tree], ""), *parts))
+        return with_children(tree, parts)
 
     def _look_up(self, name: str, order: int) -> ca.SX:
         if name in self._abbreviations and name not in self._numbers:

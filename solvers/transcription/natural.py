@@ -17,9 +17,10 @@ from numpy.polynomial import polynomial
 from numpy.typing import NDArray
 
 from solvers.transcription.evaluation import end_inputs, mapped, point_inputs
-from solvers.transcription.functions import SMOOTHING, Compiled, rounded_functions
+from solvers.transcription.functions import Compiled, compile_problem, rounded_functions, without_rounding
 from solvers.transcription.layout import Layout
 from solvers.transcription.limits import constants_of, interval_of, quantity_bounds
+from solvers.transcription.lowering import lower
 from solvers.transcription.mesh import Mesh
 
 Array = NDArray[np.float64]
@@ -34,8 +35,14 @@ ALIKE = 0.5
 
 def natural_sizes(compiled: Compiled, mesh: Mesh, where: Layout, z: Array) -> dict[str, float]:
     """The natural sizes of the unknowns that are zero all along z (SI) and have no bounds, as far as there are any."""
-    found = {}
-    for name, order in _unsized(compiled, where, z):
+    found: dict[str, float] = {}
+    unsized = list(_unsized(compiled, where, z))
+    if not unsized:
+        return found
+    problem = compiled.lowered.problem
+    if rounded_functions(problem):  # where they are rounded their growth changes too
+        compiled = compile_problem(lower(without_rounding(problem)))
+    for name, order in unsized:
         size = _natural(compiled, mesh, where, z, name, order)
         if size is not None:
             found[name] = size
@@ -59,12 +66,12 @@ def _unsized(compiled: Compiled, where: Layout, z: Array) -> Iterator[tuple[str,
     lowered = compiled.lowered
     bounds = quantity_bounds(compiled)
     known = set()
-    for quantities, indices, lower, upper in (
+    for quantities, indices, least, most in (
         (lowered.states, np.vstack([where.nodes, where.inner]), bounds[0], bounds[1]),
         (lowered.controls, where.controls, bounds[2], bounds[3]),
     ):
         values = np.abs(z[indices]).max(axis=0, initial=0.0)
-        limits = np.maximum(*(np.where(np.isfinite(limit), np.abs(limit), 0.0) for limit in (lower, upper)))
+        limits = np.maximum(*(np.where(np.isfinite(limit), np.abs(limit), 0.0) for limit in (least, most)))
         known |= {name for (name, _), size in zip(quantities, values + limits, strict=True) if size > 0}
     for unknown in lowered.problem.unknowns:
         if unknown.order and unknown.name not in known:
@@ -83,8 +90,6 @@ def _natural(compiled: Compiled, mesh: Mesh, where: Layout, z: Array, name: str,
     change = np.minimum(np.where(np.isfinite(change), change, 0.0), 1.0)
     change[np.isfinite(growth[1:-1]) & np.isnan(growth[2:])] = 1.0  # beyond this size it has no value
     change = change.sum(axis=1)
-    if rounded_functions(compiled.lowered.problem):
-        change[np.abs(np.log10(sizes[1:-1] / SMOOTHING)) < 2] = 0.0
     if not change.max(initial=0.0) >= CHANGE:
         return None
     inner = POWERS[1:-1]

@@ -24,7 +24,6 @@ from solvers.tables.table import Table
 from solvers.transcription.derivatives import Differentiated
 from solvers.transcription.evaluation import mapped
 from solvers.transcription.functions import (
-    SMOOTHING,
     Compiled,
     PointFunction,
     compile_problem,
@@ -37,9 +36,9 @@ from solvers.transcription.functions import (
 
 Array = NDArray[np.float64]
 
-ZONE = 1e3 * SMOOTHING
-"""How near to a kink of `abs` the curve of the exact problem may run in it."""
-BESIDE = 10 * SMOOTHING
+ZONE = 1e3
+"""How near to a kink of `abs`, in widths, the curve of the exact problem may run in it."""
+BESIDE = 10
 """How near to one a curve lies in it; farther off the rounded function is as straight as the exact one."""
 SHIFTS = (-1.0, -0.5, 0.0, 0.5, 1.0)
 """Where a table is compared with its exact one, around an argument and relative to the reach of its roundings."""
@@ -85,12 +84,13 @@ class _Marking(Lookups):
     def operations(self) -> dict[str, Callable[..., ca.SX]]:
         return {**with_kinks(self._absolute, self._sign), "table": self._table}
 
-    def _absolute(self, x: ca.SX) -> ca.SX:
-        most = ca.if_else(ca.fabs(x) < ZONE, SMOOTHING, smooth_abs(x) - ca.fabs(x))
-        return smooth_abs(x) + self._mark(most, ca.fabs(x) < BESIDE, x)
+    def _absolute(self, width: ca.SX, x: ca.SX) -> ca.SX:
+        most = ca.if_else(ca.fabs(x) < ZONE * width, width, smooth_abs(width, x) - ca.fabs(x))
+        return smooth_abs(width, x) + self._mark(most, ca.fabs(x) < BESIDE * width, x)
 
-    def _sign(self, x: ca.SX) -> ca.SX:
-        return smooth_sign(x) + self._mark(1 - ca.fabs(smooth_sign(x)), ca.SX(0), x)
+    def _sign(self, width: ca.SX, x: ca.SX) -> ca.SX:
+        rounded = smooth_sign(width, x)
+        return rounded + self._mark(1 - ca.fabs(rounded), ca.SX(0), x)
 
     def _table(self, table: Table, orders: tuple[int, ...], *arguments: ca.SX) -> ca.SX:
         value = self.value(table, orders, *arguments)
