@@ -12,6 +12,7 @@ from __future__ import annotations
 import time
 from collections.abc import Callable
 from functools import cached_property
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -30,6 +31,8 @@ FALL = 0.2
 """Whole steps that are tried, and how far each must let the residual fall."""
 BINDING = 1e-7
 """Multipliers (scaled) of limits that count as binding."""
+REGULAR = 1e-12
+"""What keeps the matrix of a step regular where nothing determines some variables, or a condition repeats others."""
 
 
 def stationary_point(program: Program, start: Start, watch: Callable[[Iterate], bool]) -> Minimum:
@@ -118,6 +121,13 @@ class _System:
     def _optimality(self) -> Optimality:
         return Optimality(self.program, self.free, self.equal)
 
+    @cached_property
+    def _regular(self) -> Any:
+        from scipy.sparse import diags_array
+
+        signs = np.concatenate([np.ones(len(self.free)), -np.ones(len(self.equal))])
+        return diags_array(REGULAR * signs, format="csc")
+
     def value(self, z: Array) -> float:
         return self.program.numbers.value(z)
 
@@ -145,7 +155,7 @@ class _System:
         weights = np.zeros(self.program.rows.count)
         weights[self.equal] = multipliers[self.equal]
         numbers = self.program.numbers
-        matrix = self._optimality.matrix(numbers.hessian(z, 1.0, weights), numbers.jacobian(z))
+        matrix = self._optimality.matrix(numbers.hessian(z, 1.0, weights), numbers.jacobian(z)) + self._regular
         try:
             step = splu(matrix).solve(-residual)
         except RuntimeError:

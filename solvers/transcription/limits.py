@@ -72,8 +72,9 @@ def limits(compiled: Compiled, where: Layout, rows: Rows) -> tuple[Array, Array,
     for touch in problem.touches:
         node = where.at_place[[place.label for place in problem.places].index(touch.place)]
         touched = (touch.name, touch.order)
-        at = where.nodes[node, compiled.lowered.states.index(touched)]
-        lower[at] = upper[at] = lower[at] if touch.side < 0 else upper[at]
+        state = compiled.lowered.states.index(touched)
+        at = where.nodes[node, state]  # where its limits may be left out for a stretch beside it
+        lower[at] = upper[at] = state_lower[state] if touch.side < 0 else state_upper[state]
         for slope in _slopes(compiled.lowered, touched)[:1]:
             lower[where.nodes[node, slope]] = upper[where.nodes[node, slope]] = 0.0
     for parameter, index in zip(problem.parameters, where.parameters, strict=True):

@@ -99,3 +99,12 @@ def test_from_a_guess_without_multipliers_the_first_step_finds_them():
     assert again.outcome is Outcome.SOLVED
     np.testing.assert_allclose(again.z, found.z, atol=1e-8)
     np.testing.assert_allclose(again.multipliers, found.multipliers, atol=1e-8)
+
+
+def test_a_singular_system_says_nothing_and_leads_nowhere(capfd):
+    """All is linear: nothing determines u but its limit.  The factorization would complain on the standard output."""
+    problem = stated(unknowns={"x": {}, "u": {"within": [0, None]}}, dynamics=["x' = u"], constraints=["u <= x"],
+                     functional={"seek": "maximum", "integrand": "x"}, endpoints=["x(0) = 1"])  # fmt: skip
+    program = program_of(problem, uniform(1, 6, 6))
+    assert straight_to(program, Start(np.full(program.layout.size, 0.1)), lambda iterate: False) is None
+    assert capfd.readouterr() == ("", "")

@@ -4,7 +4,7 @@ from dataclasses import replace
 
 import numpy as np
 
-from solvers.problem import Held
+from solvers.problem import Held, Touch
 from solvers.transcription.layout import layout, row_order
 from solvers.transcription.limits import interval_of, limits, number, quantity_bounds
 from solvers.transcription.mesh import uniform
@@ -84,6 +84,16 @@ def test_a_limit_that_follows_from_what_is_held_is_not_stated():
     assert (upper[where.nodes[-1, 0]], upper[where.nodes[-2, 0]]) == (1, 3)
     assert (lower[where.nodes[node, 0]], upper[where.nodes[node, 0]]) == (0, 0)
     assert np.all(lower[where.inner[where.stretch == 0, 0][:-1]] == 0)
+
+
+def test_a_touch_stays_one_where_the_limit_is_not_stated_beside_it():
+    members = {"unknowns": {"x": {"within": [-3, None]}, "u": {"within": [0, 2]}}, "dynamics": ["x'' = u"]}
+    problem = stated(**members, endpoints=["x(0) = 1", "x(1/2) <= 2"])
+    place = problem.places[1].label
+    problem = replace(problem, implied=(Held(1, "x", 0, -1),), touches=(Touch(place, "x", 0, -1),))
+    where, lower, upper, *_ = bounds_of(problem)
+    value, slope = where.nodes[where.at_place[1]]
+    assert (lower[value], upper[value], lower[slope], upper[slope]) == (-3, -3, 0, 0)
 
 
 def test_limits_are_formulas_of_constants():
