@@ -16,7 +16,7 @@ NOTHING_KEPT = "No curve had been found by then"
 
 OUT_OF_TIME = f"The time limit was reached before the tolerance. {KEPT}."
 
-CUT_SHORT = (End.TIME.value, End.POINTS.value, End.STOPPED.value)
+CUT_SHORT = (End.TIME.value, End.FAR.value, End.POINTS.value, End.STOPPED.value)
 COARSE = 0.1
 """Relative error of a mesh that has hardly anything of the curve."""
 HARDLY = 1.5
@@ -31,6 +31,8 @@ NAMED = 6
 _SENTENCES = {
     End.POINTS: f"The limit on points was reached before the tolerance. {KEPT}; the curve may "
     "have more corners or layers than `solve.points` allows.",
+    End.FAR: "Finer meshes bring the curve nearer to the tolerance so slowly that the time limit would not suffice "
+    f"many times over. {KEPT}.",
     End.STOPPED: f"The run was stopped. {KEPT}.",
     End.UNBOUNDED: "The value runs away: within the conditions it can be made better without limit, so there is no "
     "optimum. A bound on an unknown or one more condition may be missing.",
@@ -58,7 +60,7 @@ def diagnose(pursuit: Pursuit) -> Diagnosis | None:
         sentence = OUT_OF_TIME if pursuit.end is End.TIME else _SENTENCES[pursuit.end]
         if not pursuit.solved:
             sentence = sentence.replace(KEPT, NOTHING_KEPT)
-        if pursuit.end is End.TIME:
+        if pursuit.end in (End.TIME, End.FAR):
             sentence = f"{sentence} {_what_helps(pursuit)}"
         if not pursuit.solved and pursuit.last is not None and pursuit.end in (End.TIME, End.STOPPED):
             findings, astray = broken(pursuit.last[0], pursuit.last[1].z)
@@ -100,10 +102,11 @@ def _what_helps(pursuit: Pursuit) -> str:
         return (f"The {len(errors)} meshes so far are too coarse for this curve (relative error {errors[-1]:.1e}): "
                 "raise `solve.time_limit` several times, or try a shorter range first.")  # fmt: skip
     factor = (errors[0] / errors[-1]) ** (1 / (len(errors) - 1))
-    if factor < HARDLY:
+    if factor < HARDLY or pursuit.end is End.FAR:
         return (f"The relative error has hardly fallen over {len(errors)} meshes ({errors[0]:.1e}, now "
                 f"{errors[-1]:.1e}), so that more time alone may not do: loosen `solve.tolerance`, or look whether "
-                "the curve has corners or layers that the problem could name as places.")  # fmt: skip
+                "the curve has corners or layers that the problem could name as places, or a control that has to "
+                "jump ever more often.")  # fmt: skip
     left = max(1, math.ceil(math.log(errors[-1] / pursuit.problem.options.tolerance) / math.log(factor)))
     meshes = f"{left} more mesh{'es' if left > 1 else ''}"
     return (f"The relative error fell {factor:.2g} times from mesh to mesh and is {errors[-1]:.1e} now: about {meshes} "

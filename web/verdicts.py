@@ -38,6 +38,7 @@ _REASONS = {
     ),
     "undefined": ("A formula has no value or no derivative where the search begins", ""),
     "out of time": ("The time limit ended the search", ""),
+    "out of reach": ("Finer meshes hardly help", ""),
     "stopped": ("Stopped before the end", "Edit the problem or solve it again as it is."),
     "unbounded": ("The value runs away", ""),
     "degenerates": (

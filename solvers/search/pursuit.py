@@ -16,7 +16,7 @@ from solvers.search.beginning import FEW_ITERATIONS, begin, begin_from
 from solvers.search.corners import at_corners
 from solvers.search.effort import Minimiser
 from solvers.search.record import End, Pursuit
-from solvers.search.settling import estimate_errors, settled, worth_of_misses
+from solvers.search.settling import estimate_errors, out_of_reach, settled, worth_of_misses
 from solvers.search.widths import with_widths
 from solvers.solution import Watch
 from solvers.transcription.functions import compile_problem
@@ -84,6 +84,8 @@ def go_on(pursuit: Pursuit, watch: Watch | None, deadline: Deadline, meshes: int
 
 def _go_on(pursuit: Pursuit, minimise_: Minimiser, meshes: int) -> None:
     """Refine and solve until the tolerance is met or something ends it."""
+    if pursuit.blocked:
+        return
     options = pursuit.problem.options
     pursuit.end = End.SETTLED
     for _ in range(meshes):
@@ -95,12 +97,16 @@ def _go_on(pursuit: Pursuit, minimise_: Minimiser, meshes: int) -> None:
         if mesh is None:
             pursuit.end = End.POINTS
             return
+        if out_of_reach(pursuit, minimise_.deadline.left, MESHES - len(pursuit.steps)):
+            pursuit.end = End.FAR
+            return
         if minimise_.deadline.over or minimise_.deadline.left < 1.2 * pursuit.steps[-1].seconds:
             pursuit.end = End.TIME
             return
         step = _next(path, _with_corners(mesh, path, options.points), minimise_)
         if step is None:
-            if pursuit.end is End.FAILED and pursuit.shown and pursuit.value_met_before:
+            pursuit.blocked = pursuit.end is End.FAILED
+            if pursuit.blocked and pursuit.shown and pursuit.value_met_before:
                 pursuit.end = End.SETTLED  # what the meshes before have shown stays shown
             return
         _add(pursuit, minimise_, *step)

@@ -23,6 +23,7 @@ class End(Enum):
     SETTLED = "settled"  # the value and the states stand still, controls do not sharpen any more
     POINTS = "points limit"
     TIME = "out of time"
+    FAR = "out of reach"  # the error falls too slowly for any time like the limit
     STOPPED = "stopped"
     INFEASIBLE = "infeasible"  # proved
     NOWHERE = "no curve found"  # that satisfies all conditions
@@ -55,6 +56,7 @@ class Pursuit:
     iterations: int = 0
     gently: bool = False  # whether the last warm start had to begin with a small barrier
     astray: bool = False  # whether a barrier that adapts did not come to an end
+    blocked: bool = False  # whether the next mesh could not be solved
 
     @property
     def solved(self) -> bool:

@@ -27,6 +27,15 @@ NARROWER = 0.5
 STAYING = 0.7
 """... if within so much of the width, or less, it rises by so much of what it did or more."""
 
+TREND = 4
+"""So many meshes, one after the other, tell how the error falls and the effort grows ..."""
+RESOLVED = 0.1
+"""... once the error is below this: before, the curve is hardly seen."""
+LATE = 0.05
+"""Share of the time limit from which on it is asked whether the rest may suffice ..."""
+TIMES_OVER = 30.0
+"""... and how many times it would have to be there."""
+
 
 def estimate_errors(pursuit: Pursuit, found: refinement.Estimate) -> None:
     """Errors of value and curve from the last two meshes: their difference, and how much the mesh has improved since.
@@ -75,6 +84,24 @@ def settled(pursuit: Pursuit) -> End | None:
         return End.SETTLED
     pursuit.value_met_before = value_met
     return None
+
+
+def out_of_reach(pursuit: Pursuit, left: float, meshes: int) -> bool:
+    """Whether so many more meshes, or as many as are needed, take far more than the seconds that are `left`.
+
+    Said only where the error falls steadily and the effort grows: else anything may happen on the next mesh.  How it
+    grows is counted in iterations times points, which no load of the machine changes.
+    """
+    options, steps = pursuit.problem.options, pursuit.steps[-TREND:]
+    errors, efforts = [step.error or 0.0 for step in steps], [step.iterations * step.points for step in steps]
+    steady = all(after < before for before, after in pairwise(errors)) and 0 < efforts[0] < efforts[-1]
+    spent = sum(step.seconds for step in pursuit.steps)
+    if len(steps) < TREND or not steady or errors[-1] > RESOLVED or pursuit.value_met:
+        return False
+    fall, growth = ((of[-1] / of[0]) ** (1 / (TREND - 1)) for of in (errors, efforts))
+    needed = min(np.log(options.tolerance / errors[-1]) / np.log(fall), meshes)
+    seconds = steps[-1].seconds * (growth**needed - 1) / (1 - 1 / growth)
+    return bool(spent >= LATE * options.time_limit and seconds > TIMES_OVER * left)
 
 
 def _jump(pursuit: Pursuit) -> tuple[Finding, ...]:

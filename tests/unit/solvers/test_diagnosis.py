@@ -107,6 +107,15 @@ def test_what_helps_is_what_was_seen(errors, advice):
     assert advice in diagnose(found).sentence
 
 
+def test_what_is_out_of_reach_does_not_ask_for_more_time():
+    found = pursuit(End.FAR)
+    found.paths.append(None)
+    found.steps += [mesh(error) for error in (0.09, 0.05, 0.02)]
+    sentence = diagnose(found).sentence
+    assert "hardly fallen over 3 meshes" in sentence
+    assert "time_limit" not in sentence
+
+
 def test_a_curve_that_is_not_feasible_yet_says_what_it_misses_and_by_how_much():
     """x' = u from x(0) = 1, with x <= 2: a start at rest at 3 breaks both, and x' = 2 is not met."""
     problem = stated(unknowns={"x": {"within": [None, 2]}, "u": {}}, endpoints=["x(0) = 1"])

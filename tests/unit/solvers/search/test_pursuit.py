@@ -7,8 +7,9 @@ import numpy as np
 import pytest
 
 from solvers.deadline import in_seconds
-from solvers.minimise.ipopt import WARM
+from solvers.minimise.ipopt import WARM, Minimum, Outcome
 from solvers.search.attempt import FIRST_DEGREE, first_mesh
+from solvers.search.effort import Minimiser
 from solvers.search.pursuit import gentle_barrier, go_on, pursue
 from solvers.search.record import End
 from solvers.transcription.collocation import Family
@@ -129,6 +130,25 @@ def test_meshes_grow_by_a_factor_at_most():
     )
     for before, after in pairwise(pursuit.steps):
         assert after.points <= 2.5 * before.points + 40
+
+
+def test_a_mesh_that_could_not_be_solved_is_not_tried_again(monkeypatch):
+    pursuit = pursue(stated(**CORNER), None, far(), meshes=2)
+    tried = []
+
+    def stuck(minimiser, program, start, options=None):
+        tried.append(program.mesh)
+        size = len(program.lower)
+        return Minimum(Outcome.FAILED, start.z, 0.0, np.zeros(size), np.zeros(program.rows.count), 0, 0.0, 0.0, "")
+
+    monkeypatch.setattr(Minimiser, "__call__", stuck)
+    monkeypatch.setattr(Minimiser, "nearby", lambda *_: None)
+    go_on(pursuit, None, far())
+    assert pursuit.end is End.FAILED
+    count = len(tried)
+    assert count > 0
+    go_on(pursuit, None, far())
+    assert (pursuit.end, len(tried)) == (End.FAILED, count)
 
 
 def test_going_on_is_the_same_as_not_stopping():
