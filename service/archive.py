@@ -205,7 +205,9 @@ def _stretch(stretch: Stretch, problem: Problem) -> dict[str, Any]:
         "of": stretch.of,
         "arc": stretch.arc,
         "from": _in(stretch.start, problem.independent_unit),
+        "from_error": _in(stretch.start_error, problem.independent_unit),
         "to": _in(stretch.end, problem.independent_unit),
+        "to_error": _in(stretch.end_error, problem.independent_unit),
         "course": stretch.course.value,
     }
 

@@ -110,7 +110,11 @@ class StretchFound(Part):
     of: str = Field(description="an unknown with its primes, or the constraint")
     arc: str = Field(description="the arc; empty where one set of laws holds from end to end")
     start: float | None = Field(alias="from", description="in the unit of the independent variable")
+    start_error: float | None = Field(
+        default=None, alias="from_error", description="how far that may be off; null where the place is given"
+    )
     end: float | None = Field(alias="to")
+    end_error: float | None = Field(default=None, alias="to_error")
     course: Literal[
         "at its lower limit", "at its upper limit", "singular", "inside its limits", "switching ever faster"
     ]

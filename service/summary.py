@@ -179,7 +179,8 @@ def _stretches(result: Mapping[str, Any]) -> Iterator[str]:
     yield "From switch to switch"
     for one in result["stretches"]:
         of = f"{one['of']} on {one['arc']}" if one["arc"] else one["of"]
-        ends = f"{display.number(one['from'])} to {display.quantity(one['to'], independent['unit'])}"
+        start, end = (display.with_error(one[end], one[f"{end}_error"]) for end in ("from", "to"))
+        ends = f"{start} to {display.joined(end, independent['unit'])}"
         yield f"  {of:<16}{independent['name']} = {ends:<28}{one['course']}"
 
 

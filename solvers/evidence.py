@@ -11,6 +11,7 @@ import numpy as np
 
 from solvers import checks
 from solvers.answers.fit import fit
+from solvers.answers.place_errors import known_digits, place_errors
 from solvers.answers.prices import prices
 from solvers.answers.sensitivity import Shift, limit_shifts, slopes
 from solvers.answers.stretches import stretches
@@ -143,7 +144,8 @@ def with_evidence(
     kept = {name: functions for name, functions in shape.functions.items() if not name.startswith(SLACK + " ")}
     fitted = None if brief else fit(path)
     notes = () if brief else (*_notes(problem, pursuit, gauged), *([left_out] if left_out else []))
-    switches = _switches(pursuit, gauged)
+    errors = place_errors(pursuit)
+    switches = _switches(pursuit, gauged, errors)
     return Solution(
         verdict=verdict,
         value=value,
@@ -164,7 +166,7 @@ def with_evidence(
         fit=fitted,
         notes=notes,
         switches=switches,
-        stretches=() if brief else _stretches(path, gauged),
+        stretches=() if brief else _stretches(pursuit, gauged, errors),
     )
 
 
@@ -195,30 +197,42 @@ def _undetermined(
     return flat_directions(path, names, value_error, on_graph)
 
 
-def _switches(pursuit: Pursuit, gauged: Gauged | None) -> tuple[SwitchPlace, ...]:
+def _switches(pursuit: Pursuit, gauged: Gauged | None, errors: Sequence[float | None]) -> tuple[SwitchPlace, ...]:
     """Where controls switch, on the problem's own independent variable."""
     path = pursuit.paths[-1]
+    known = dict(zip(map(float, path.places), errors, strict=True))
     found = present_switches(path)
-    places = np.array([switch.place for switch in found])
-    if gauged is not None and gauged.graph and found:
-        places = curve(path).evaluate(gauged.original.independent, places)
-    return tuple(SwitchPlace(float(place), switch.of) for place, switch in zip(places, found, strict=True))
+    told = _in_original(gauged, pursuit, [(switch.place, known[switch.place]) for switch in found])
+    return tuple(SwitchPlace(place, switch.of, error or 0.0)
+                 for (place, error), switch in zip(told, found, strict=True))  # fmt: skip
 
 
-def _stretches(path: Trajectory, gauged: Gauged | None) -> tuple[Stretch, ...]:
+def _stretches(pursuit: Pursuit, gauged: Gauged | None, errors: Sequence[float | None]) -> tuple[Stretch, ...]:
     """What lies between the switches; of a curve in parametric form what is said of the unknowns themselves."""
-    found = stretches(path)
+    found = stretches(pursuit.paths[-1], errors)
     if gauged is None or not found:
         return found
     names = {*(unknown.name for unknown in gauged.original.unknowns), *(c.label for c in gauged.original.conditions)}
     found = tuple(stretch for stretch in found if stretch.of in names)
-    if not gauged.graph:
-        return found
-    x, drawn = gauged.original.independent, curve(path)
-    starts = drawn.evaluate(x, np.array([s.start for s in found])).tolist()
-    ends = drawn.evaluate(x, np.array([s.end for s in found])).tolist()
-    told = (replace(s, start=start, end=end) for s, start, end in zip(found, starts, ends, strict=True))
+    starts = _in_original(gauged, pursuit, [(s.start, s.start_error) for s in found])
+    ends = _in_original(gauged, pursuit, [(s.end, s.end_error) for s in found])
+    told = (replace(s, start=start, start_error=early, end=end, end_error=late)
+            for s, (start, early), (end, late) in zip(found, starts, ends, strict=True))  # fmt: skip
     return tuple(stretch for stretch in told if stretch.start < stretch.end)
+
+
+def _in_original(
+    gauged: Gauged | None, pursuit: Pursuit, places: Sequence[tuple[float, float | None]]
+) -> Sequence[tuple[float, float | None]]:
+    """Places and their errors on the problem's own independent variable, which is an unknown in parametric form."""
+    if gauged is None or not gauged.graph or not places:
+        return places
+    x, drawn = gauged.original.independent, curve(pursuit.paths[-1])
+    at = np.array([place for place, _ in places])
+    values, slopes = drawn.evaluate(x, at), np.abs(drawn.evaluate(x, at, 1))
+    own = pursuit.curve_error * float(np.ptp(drawn.evaluate(x, drawn.breaks)))
+    return [(float(value), None if error is None else float(slope * error + own))
+            for value, slope, (_, error) in zip(values, slopes, places, strict=True)]  # fmt: skip
 
 
 def about_switches(problem: Problem, found: Solution) -> str:
@@ -226,7 +240,8 @@ def about_switches(problem: Problem, found: Solution) -> str:
     if not found.switches:
         return ""
     unit = f" {problem.independent_unit.text}" if problem.independent_unit.text else ""
-    listed = ", ".join(f"{switch.place / problem.independent_unit.factor:.9g}" for switch in found.switches)
+    factor = problem.independent_unit.factor
+    listed = ", ".join(known_digits(switch.place / factor, switch.error / factor) for switch in found.switches)
     word = "Switches" if any(switch.of for switch in found.switches) else "Corners"
     return f"{word} were found and made unknowns of the problem: {problem.independent} = {listed}{unit}."
 

@@ -156,10 +156,14 @@ class Progress:
 
 @dataclass(frozen=True, slots=True)
 class SwitchPlace:
-    """A place at which controls jump or a limit begins or ceases to bind, and the unknowns that it is about."""
+    """A place at which controls jump or a limit begins or ceases to bind, and the unknowns that it is about.
+
+    `error` is how far it may be off.
+    """
 
     place: float
     of: frozenset[str]
+    error: float
 
 
 class Course(Enum):
@@ -174,7 +178,10 @@ class Course(Enum):
 
 @dataclass(frozen=True, slots=True)
 class Stretch:
-    """What is said of `of`, a control or what lies on a limit: an unknown with its primes, or a constraint's label."""
+    """What is said of `of`, a control or what lies on a limit: an unknown with its primes, or a constraint's label.
+
+    The errors are how far its ends may be off, None where these are given.
+    """
 
     start: float
     end: float
@@ -182,6 +189,8 @@ class Stretch:
     course: Course
     control: bool = False
     arc: str = ""  # of a problem of arcs
+    start_error: float | None = None
+    end_error: float | None = None
 
 
 @dataclass(frozen=True, slots=True)

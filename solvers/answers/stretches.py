@@ -13,6 +13,7 @@ from itertools import groupby, pairwise
 import numpy as np
 from numpy.typing import NDArray
 
+from solvers.answers.place_errors import known_digits
 from solvers.problem import Problem
 from solvers.search.chatter import chatter
 from solvers.search.signals import SWITCH
@@ -32,23 +33,29 @@ FAINT = 1e-3
 FEWEST = 3
 """Points that make a stretch where nothing is held: at an end, or where a limit is touched, one or two come near."""
 
+Edge = tuple[float, float | None]
+"""Where a stretch begins or ends, and how far that may be off."""
+
 _SIDES = {-1: Course.LOWER, 1: Course.UPPER}
 
 
-def stretches(path: Trajectory) -> tuple[Stretch, ...]:
-    """All stretches of a path whose switches are places, quantity by quantity; none of a path without structure."""
+def stretches(path: Trajectory, errors: Sequence[float | None]) -> tuple[Stretch, ...]:
+    """All stretches of a path whose switches are places, quantity by quantity; none of a path without structure.
+
+    `errors` are those of the places, None for given ones (`solvers.answers.place_errors`).
+    """
     problem = path.program.compiled.lowered.problem
     switches = any(place.label.startswith(SWITCH + " ") for place in problem.places)
     if not (switches or problem.held or problem.calm):
         return ()
-    return tuple(_Reader(path).all())
+    return tuple(_Reader(path, errors).all())
 
 
 class _Reader:
     """Reads what is on its limit point by point: -1 on the lower one, 1 on the upper one, 0 between."""
 
-    def __init__(self, path: Trajectory) -> None:
-        self.path = path
+    def __init__(self, path: Trajectory, errors: Sequence[float | None]) -> None:
+        self.path, self.errors = path, errors
         self.compiled = path.program.compiled
         self.problem = self.compiled.lowered.problem
         self.stretch = path.program.layout.stretch
@@ -80,7 +87,7 @@ class _Reader:
             codes = np.where(self._singular(quantity) & (sides == 0), 2, sides)
             told = {**_SIDES, 0: Course.INSIDE, 2: Course.SINGULAR}
             for start, end, code in self._runs(codes, fewest=2):
-                yield from self._without_crowd(Stretch(start, end, primed(quantity), told[code], control=True))
+                yield from self._without_crowd(_between(start, end, primed(quantity), told[code], control=True))
         for index, quantity in enumerate(self.compiled.lowered.states):
             yield from self._on_limits(primed(quantity), self.states[:, index])
         for index, condition in enumerate(self.compiled.pointwise):
@@ -91,9 +98,11 @@ class _Reader:
         """What follows the switches that were found of a control that chatters is not singular before they crowd."""
         crowd, own = self.crowd, (found.of, found.start)
         if crowd is not None and own == (primed(crowd.control), self.path.places[crowd.last + 1]):
-            ends = min(crowd.ends, found.end)
-            yield replace(found, end=ends, course=Course.CHATTERING)
-            found = replace(found, start=ends)
+            ends: Edge = crowd.ends, crowd.ends - found.start  # as far as the series had to be continued
+            if crowd.ends >= found.end:
+                ends = found.end, found.end_error
+            yield replace(found, end=ends[0], end_error=ends[1], course=Course.CHATTERING)
+            found = replace(found, start=ends[0], start_error=ends[1])
         if found.start < found.end:
             yield found
 
@@ -132,10 +141,10 @@ class _Reader:
         """The stretches of one state or constraint on a limit."""
         for start, end, side in self._runs(sides, fewest=FEWEST):
             if side:
-                yield Stretch(start, end, label, _SIDES[side])
+                yield _between(start, end, label, _SIDES[side])
 
-    def _runs(self, codes: Indices, *, fewest: int) -> Iterator[tuple[float, float, int]]:
-        """Runs of equal codes, from the place where each begins to where it ends.
+    def _runs(self, codes: Indices, *, fewest: int) -> Iterator[tuple[Edge, Edge, int]]:
+        """Runs of equal codes, from the place where each begins to where it ends, both with their errors.
 
         That is a place of the problem where one is no more than a point away, else halfway between two points.  What
         has too few points belongs to what comes before, or else after.
@@ -146,14 +155,19 @@ class _Reader:
             members = list(group)
             if len(members) >= fewest and not (kept and kept[-1][1] == code):
                 kept.append((members[0], code))
-        edges = [float(places[0])]
+        known = list(zip(map(float, places), self.errors, strict=True))
+        edges = [known[0]]
         for first, _ in kept[1:]:
             around = points[max(first - 2, 0) : first + 2]
-            halfway = (points[first - 1] + points[first]) / 2
-            near = places[(places >= around[0]) & (places <= around[-1])]
-            edges.append(float(min(near, key=lambda place: abs(place - halfway)) if len(near) else halfway))
-        edges.append(float(places[-1]))
+            halfway, reach = float(points[first - 1] + points[first]) / 2, float(points[first] - points[first - 1]) / 2
+            near = [edge for edge in known if around[0] <= edge[0] <= around[-1]]
+            edges.append(min(near, key=lambda edge: abs(edge[0] - halfway), default=(halfway, reach)))
+        edges.append(known[-1])
         yield from ((start, end, code) for (start, end), (_, code) in zip(pairwise(edges), kept, strict=False))
+
+
+def _between(start: Edge, end: Edge, of: str, course: Course, *, control: bool = False) -> Stretch:
+    return Stretch(start[0], end[0], of, course, control, start_error=start[1], end_error=end[1])
 
 
 def _near(values: Array, lower: Array, upper: Array) -> Indices:
@@ -171,7 +185,9 @@ def sentences(problem: Problem, found: Sequence[Stretch]) -> Iterator[str]:
     told: dict[tuple[str, str, Course], list[str]] = {}
     for s in found:
         if s.course is Course.SINGULAR or (s.course in _SIDES.values() and not s.control):
-            told.setdefault((s.of, s.arc, s.course), []).append(f"{s.start / factor:.5g} to {s.end / factor:.5g}")
+            start, end = (known_digits(at / factor, None if error is None else error / factor, most=5)
+                          for at, error in ((s.start, s.start_error), (s.end, s.end_error)))  # fmt: skip
+            told.setdefault((s.of, s.arc, s.course), []).append(f"{start} to {end}")
     for (of, arc, course), places in told.items():
         verb = "runs" if course is Course.SINGULAR else "is"
         on = f" on {arc}" if arc else ""

@@ -54,7 +54,10 @@ class Cut:
         """A solution of the cut problem, told by arcs, as one of the problem itself."""
         own = {name: value for name, value in solution.parameters.items() if name not in self.of}
         places = sorted((solution.parameters[name], name) for name in self.of)
-        switches = tuple(SwitchPlace(place, frozenset({self.of[name]})) for place, name in places)
+        breaks = [arc.curve.breaks for arc in solution.arcs]
+        off = 1.0 if solution.curve_error is None else min(solution.curve_error, 1.0)
+        error = off * float(breaks[-1][-1] - breaks[0][0]) if breaks else 0.0
+        switches = tuple(SwitchPlace(place, frozenset({self.of[name]}), error) for place, name in places)
         return replace(solution, parameters=own, switches=switches)
 
 

@@ -75,6 +75,19 @@ class Where:
         start, end = self.places[piece.place], self.places[piece.place + 1]
         return float(start + (end - start) * place) if np.isfinite(start + end) else None
 
+    def error(self, piece: Piece, place: float, error: float | None, curve_error: float | None) -> float | None:
+        """How far off that may be: as the place is, and as the curve with the ends of its arc, where these are free."""
+        ends = self.places[piece.place : piece.place + 2]
+        free = not np.isfinite(_places(self.beside, {})[piece.place : piece.place + 2]).all()
+        if error is None and not free:
+            return None
+        own = piece.own(self.beside.original.independent)
+        slope = float(np.ptp(ends))
+        if self.curve is not None and own in self.curve.functions:
+            slope = abs(float(self.curve.evaluate(own, np.array([place]), 1)[0]))
+        off = np.inf if curve_error is None else curve_error
+        return float(slope * (error or 0.0) + min(off, 1.0) * np.ptp(self.places) * free)
+
 
 def _point(beside: Beside, point: SweepPoint) -> SweepPoint:
     """A point of a sweep with its curve by arcs."""
@@ -158,8 +171,9 @@ def _switches(beside: Beside, found: Solution, where: Where) -> Iterator[SwitchP
     for switch in found.switches:
         for name, piece in map(beside.parted, switch.of):
             at = where.at(piece, switch.place)
-            if at is not None:
-                yield SwitchPlace(at, frozenset({name}))
+            if piece is not None and at is not None:
+                error = where.error(piece, switch.place, switch.error, found.curve_error)
+                yield SwitchPlace(at, frozenset({name}), error or 0.0)
 
 
 def _stretches(beside: Beside, found: Solution, where: Where) -> tuple[Stretch, ...]:
@@ -170,14 +184,18 @@ def _stretches(beside: Beside, found: Solution, where: Where) -> tuple[Stretch, 
         start, end = where.at(piece, stretch.start), where.at(piece, stretch.end)
         if piece is not None and start is not None and end is not None and end > start:
             arc = beside.original.arcs[piece.arc].name
-            told.setdefault(name, []).append(replace(stretch, start=start, end=end, of=name, arc=arc))
+            early = where.error(piece, stretch.start, stretch.start_error, found.curve_error)
+            late = where.error(piece, stretch.end, stretch.end_error, found.curve_error)
+            own = replace(stretch, start=start, start_error=early, end=end, end_error=late, of=name, arc=arc)
+            told.setdefault(name, []).append(own)
     kept: list[Stretch] = []
     for parts in told.values():
         for part in sorted(parts, key=lambda part: part.start):
             last = kept[-1] if kept else None
             near = 1e-9 * (part.end - part.start)
-            if last and replace(last, start=part.start, end=part.end) == part and part.start - last.end <= near:
-                kept[-1] = replace(last, end=part.end)
+            same = last and (last.arc, last.course, last.control) == (part.arc, part.course, part.control)
+            if last and same and part.start - last.end <= near:
+                kept[-1] = replace(last, end=part.end, end_error=part.end_error)
             else:
                 kept.append(part)
     return tuple(kept)

@@ -185,8 +185,11 @@ def test_what_controls_do_from_switch_to_switch_is_handed_over(client, post):
     told = client.get(run["links"]["result"]).json()["stretches"]
     assert [(one["of"], one["course"]) for one in told] == [("u", "at its lower limit"), ("u", "singular")]
     assert told[0]["to"] == told[1]["from"] == pytest.approx(np.log(9), rel=1e-7)
+    assert told[0]["from_error"] is told[1]["to_error"] is None
+    assert abs(told[0]["to"] - np.log(9)) <= told[0]["to_error"] == told[1]["from_error"] < 1e-6
     heading, *rows = csv.reader(io.StringIO(client.get(f"{run['links']['self']}/stretches.csv").text))
-    assert heading == ["of", "arc", "course", "from [h]", "to [h]"] and rows[1][2] == "singular"
+    assert heading == ["of", "arc", "course", "from [h]", "from_error [h]", "to [h]", "to_error [h]"]
+    assert rows[1][2] == "singular" and float(rows[1][4]) == told[1]["from_error"]
     page = client.get(run["links"]["page"], headers={"accept": "text/html"}).text
     assert "From switch to switch" in page and "u runs singular from t = 2.1972 to 10 h." in page
 

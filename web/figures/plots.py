@@ -9,7 +9,7 @@ from typing import Any
 import numpy as np
 
 from solvers.curve import Array
-from web.display import number
+from web.display import number, quantity
 from web.extremes import extremes_of
 from web.figures import findings
 from web.figures.labels import bracketed, identifier
@@ -54,10 +54,10 @@ def _functions(
 ) -> Iterable[Plot]:
     singular = [stretch for stretch in stretches if stretch["course"] == "singular"]
     for plot in _grouped(trajectory, trajectory.names, 0, "curve", "Curve"):
-        yield _with_spans(_with_bands(plot, changes), singular)
+        yield _with_spans(_with_bands(plot, changes), singular, trajectory.unit)
 
 
-def _with_spans(plot: Plot, singular: Sequence[Mapping[str, Any]]) -> Plot:
+def _with_spans(plot: Plot, singular: Sequence[Mapping[str, Any]], unit: str) -> Plot:
     """The plot with the stretches shaded along which one of its lines is a singular control."""
     numbers = {trace.label: trace.number for trace in plot.traces}
     own = [stretch for stretch in singular if stretch["of"] in numbers]
@@ -65,7 +65,9 @@ def _with_spans(plot: Plot, singular: Sequence[Mapping[str, Any]]) -> Plot:
         return plot
     spans = tuple(Span(stretch["from"], stretch["to"], numbers[stretch["of"]]) for stretch in own)
     told = " and ".join(dict.fromkeys(str(stretch["of"]) for stretch in own))
-    return replace(plot, spans=spans, finding=f"{plot.finding} Shaded from top to bottom: {told} runs singular.")
+    errors = [stretch[end] for stretch in own for end in ("from_error", "to_error") if stretch.get(end)]
+    known = f" (its ends are known to {quantity(max(errors), unit, 2)})" if errors else ""
+    return replace(plot, spans=spans, finding=f"{plot.finding} Shaded from top to bottom: {told} runs singular{known}.")
 
 
 def _with_bands(plot: Plot, changes: Sequence[Trajectory]) -> Plot:

@@ -79,8 +79,8 @@ def stretches_of(result: Mapping[str, Any]) -> Rows:
     return tuple(
         (
             f"{one['of']} on {one['arc']}" if one["arc"] else str(one["of"]),
-            _place(one["from"], result),
-            _place(one["to"], result),
+            _place(one["from"], result, one.get("from_error")),
+            _place(one["to"], result, one.get("to_error")),
             str(one["course"]),
         )
         for one in result.get("stretches") or ()
@@ -93,8 +93,10 @@ def _independent(result: Mapping[str, Any]) -> tuple[str, str]:
     return str(found.get("name") or ""), str(found.get("unit") or "")
 
 
-def _place(place: float, result: Mapping[str, Any]) -> str:
-    """A place with its unit; what is lost in the rounding of the whole way is 0."""
+def _place(place: float, result: Mapping[str, Any], error: float | None = None) -> str:
+    """A place with its error, where it has one, and its unit; what is lost in the rounding of the whole way is 0."""
+    if error:
+        return display.joined(display.with_error(place, error), _independent(result)[1])
     arcs = (result.get("curve") or {}).get("arcs") or ()
     way = max((abs(end) for arc in arcs for end in (arc["breaks"][0], arc["breaks"][-1])), default=0.0)
     return display.quantity(place if abs(place) > 1e-13 * way else 0.0, _independent(result)[1], 5)

@@ -53,8 +53,14 @@ def _stretches(result: Result) -> Table:
         ("arc", "arcs", "its arc"),
         ("course", "courses", "what it does there"),
     )
-    columns = [Column("from", unit, f"{name} where it begins"), Column("to", unit, f"{name} where it ends")]
-    return _listed(result, "stretches", texts, columns, [(one["from"], one["to"]) for one in found])
+    columns = [
+        Column("from", unit, f"{name} where it begins"),
+        Column("from_error", unit, "how far that may be off; none where it is given"),
+        Column("to", unit, f"{name} where it ends"),
+        Column("to_error", unit, "how far that may be off"),
+    ]
+    rows = [(one["from"], one.get("from_error"), one["to"], one.get("to_error")) for one in found]
+    return _listed(result, "stretches", texts, columns, rows)
 
 
 def _checks(result: Result) -> Table:

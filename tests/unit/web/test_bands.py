@@ -64,14 +64,17 @@ def test_without_tolerances_nothing_is_shaded(hose):
 
 
 def test_where_a_control_is_singular_both_pictures_are_shaded(hose):
-    stretches = [{"of": "y", "arc": "", "from": 0.5, "to": 1.25, "course": "singular"},
+    stretches = [{"of": "y", "arc": "", "from": 0.5, "from_error": 2e-5, "to": 1.25, "to_error": 1e-6,
+                  "course": "singular"},
                  {"of": "y", "arc": "", "from": 1.25, "to": 3.0, "course": "at its upper limit"}]  # fmt: skip
     plot = next(plot for plot in plots({**hose, "stretches": stretches}) if plot.key.startswith("curve"))
     assert plot.spans == (Span(0.5, 1.25, 0),)
     assert drawn(plot).still.count('class="plot-span line-1"') == 1
     (shape,) = spec(plot)["layout"]["shapes"]
     assert (shape["x0"], shape["x1"], shape["fillcolor"], shape["layer"]) == (0.5, 1.25, "--line-1", "below")
-    assert plot.finding.endswith("Shaded from top to bottom: y runs singular.")
+    assert plot.finding.endswith(
+        "Shaded from top to bottom: y runs singular (its ends are known to 2·10⁻⁵\N{NO-BREAK SPACE}m)."
+    )
     plain = next(plot for plot in plots(hose) if plot.key.startswith("curve"))
     assert plain.spans == () and "plot-span" not in drawn(plain).still
 

@@ -15,8 +15,16 @@ from web.render import render
 from web.tables import FILE_FORMATS, PARTS, TableError, part_table, table
 
 STRETCHES = [
-    {"of": "u", "arc": "", "from": 0.0, "to": 1.25, "course": "singular"},
-    {"of": "u", "arc": "", "from": 1.25, "to": 3.0, "course": "at its upper limit"},
+    {"of": "u", "arc": "", "from": 0.0, "from_error": None, "to": 1.25, "to_error": 1e-6, "course": "singular"},
+    {
+        "of": "u",
+        "arc": "",
+        "from": 1.25,
+        "from_error": 1e-6,
+        "to": 3.0,
+        "to_error": None,
+        "course": "at its upper limit",
+    },
 ]
 BRANCH = {
     "constant": "d",
@@ -64,7 +72,11 @@ def test_every_part_can_be_had_in_every_format(whole, part, suffix):
 @pytest.mark.parametrize(
     ("part", "heading", "first"),
     [
-        ("stretches", ["of", "arc", "course", "from [m]", "to [m]"], ["u", "", "singular", "0.0", "1.25"]),
+        (
+            "stretches",
+            ["of", "arc", "course", "from [m]", "from_error [m]", "to [m]", "to_error [m]"],
+            ["u", "", "singular", "0.0", "", "1.25", "1e-06"],
+        ),
         ("continuation", ["kind", "d [mm]", "value [m^2]", "leg"], ["point", "50.0", "1.2", "0.0"]),
         ("fit", ["parameter", "unit", "value", "sigma"], ["b", "mm", "238.9", "2.7"]),
     ],

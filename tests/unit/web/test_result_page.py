@@ -211,11 +211,14 @@ def test_what_several_starts_led_to_is_listed_and_drawn(several, hose):
 
 
 def test_from_switch_to_switch_the_page_says_what_controls_do(hose):
-    told = [{"of": "u", "arc": "", "from": 0, "to": 1.25, "course": "singular"},
+    told = [{"of": "u", "arc": "", "from": 0, "from_error": None, "to": 1.25, "to_error": 2e-4, "course": "singular"},
             {"of": "v", "arc": "burn", "from": 1.25, "to": 3, "course": "at its upper limit"}]  # fmt: skip
     shown = page({**hose, "stretches": told})
     plain = [tuple(cell.replace("\N{NO-BREAK SPACE}", " ") for cell in row) for row in shown.stretches]
-    assert plain == [("u", "0 m", "1.25 m", "singular"), ("v on burn", "1.25 m", "3 m", "at its upper limit")]
+    assert plain == [
+        ("u", "0 m", "1.2500 ± 0.0002 m", "singular"),
+        ("v on burn", "1.25 m", "3 m", "at its upper limit"),
+    ]
     assert "From switch to switch" in render(shown)
     assert "From switch to switch" not in render(page(hose))
 
