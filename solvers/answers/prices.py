@@ -14,7 +14,7 @@ from collections.abc import Iterator
 import numpy as np
 from numpy.typing import NDArray
 
-from solvers.problem import Condition, Seek
+from solvers.problem import KINK, Condition, Seek
 from solvers.solution import Price
 from solvers.transcription.limits import constants_of, contacts, interval_of, restated
 from solvers.transcription.trajectory import Trajectory
@@ -105,6 +105,8 @@ def _limits(path: Trajectory, multipliers: Array) -> Iterator[Price]:
                 least = worth / program.scale[indices[0, column]]
                 yield from _attributed(bounded[quantity], float(above[own].sum()), float(below[own].sum()), least)
     for parameter, index in zip(problem.parameters, where.parameters, strict=True):
+        if parameter.name.startswith(KINK + " "):  # its limits are the solver's
+            continue
         limit = (f"{parameter.name} within", f"/parameters/{parameter.name}/within", parameter.lower, parameter.upper)
         yield from _attributed([limit], float(above[index]), float(below[index]), worth / program.scale[index])
 

@@ -12,6 +12,7 @@ from solvers.forms.broken import with_corner
 from solvers.forms.first_look import at_constant_speed, first_look
 from solvers.forms.gauge import Form, Gauged
 from solvers.forms.kinks import at_kinks
+from solvers.forms.kinks_by_ends import by_ends
 from solvers.forms.ridge import off_ridge
 from solvers.forms.signs import better_below, one_signed, positive, positive_along, where_defined
 from solvers.forms.slack import with_slacks
@@ -44,7 +45,15 @@ class Found:
 
 def solve_in_best_form(problem: Problem, watch: Watch | None, deadline: Deadline, form: Form) -> Found:
     """The form in which a problem is solved, solved; `form` makes it parametric where that can be."""
-    stated, problem = problem, at_kinks(problem)
+
+    def solve(resolved: Problem) -> Found:
+        return _solve(problem, resolved, watch, deadline, form)
+
+    return by_ends(problem, solve) or solve(at_kinks(problem))
+
+
+def _solve(stated: Problem, problem: Problem, watch: Watch | None, deadline: Deadline, form: Form) -> Found:
+    """A problem, with its given kinks at places, in the form in which it is solved best."""
     if problem.seek is Seek.STATIONARY:  # no jump can gain here, and Newton's method goes straighter in few variables
         pursuit = solve_as_given(with_slacks(with_widths(problem)), watch, deadline)
         if pursuit.end in (End.CONVERGED, End.STOPPED, End.TIME):

@@ -31,6 +31,7 @@ def at_free_places(problem: Problem) -> Problem:
     if not inner:
         return problem
     constants = {c.name: c.value for c in problem.constants}
+    constants |= {p.name: p.guess for p in problem.parameters if p.guess is not None}  # where an end is free
     first, *values, last = (number(place.tree, constants) for place in problem.places)
     free = tuple(
         Parameter(place.label, 0.0, 1.0, guess=(value - first) / (last - first))

@@ -17,6 +17,7 @@ from numpy.typing import NDArray
 
 from solvers.forms.free_kinks import reformulated
 from solvers.forms.kink_limits import with_limits_at_kinks
+from solvers.forms.levels import half_more, numeral, opposite, plus, times
 from solvers.forms.sign_changes import UndefinedError, sign_changes
 from solvers.formula.derivative import derivative
 from solvers.formula.evaluate import evaluate
@@ -25,7 +26,6 @@ from solvers.formula.nodes import (
     At,
     Call,
     Name,
-    Negative,
     Node,
     Number,
     Product,
@@ -35,7 +35,7 @@ from solvers.formula.nodes import (
     with_children,
 )
 from solvers.formula.substitute import at_place, substitute
-from solvers.problem import KINK, MIDDLE, Place, Problem
+from solvers.problem import KINK, MIDDLE, Parameter, Place, Problem
 from solvers.starts.sketch import ARRAYS
 from solvers.transcription.functions import ROUNDED, rounded_functions
 from solvers.transcription.limits import number
@@ -47,31 +47,43 @@ MOST = 120
 SAME = 1e-12
 """Places closer than this, relative to the range, are one."""
 
-ONE, HALF = Number(1.0, "1"), Number(0.5, "0.5")
-
 
 def at_kinks(problem: Problem) -> Problem:
     """The problem with places at all kinks that are known beforehand; the same problem where there are none.
 
-    Left as they are: kinks where an end is free, and those that move with a constant that is swept.
+    Left as they are: kinks where a place is free, and those that move with a constant that is swept.
     """
-    if problem.arcs or not rounded_functions(problem):
+    if problem.arcs or not rounded_functions(problem) or free_places(problem):
         return problem
     constants = {c.name: c.value for c in problem.constants}
-    try:
-        values = [number(place.tree, constants) for place in problem.places]
-    except KeyError:  # a place is free
-        return problem
-    return _Kinks(problem, values).resolved()
+    return Kinks(problem, [number(place.tree, constants) for place in problem.places]).resolved
 
 
-class _Kinks:
-    """The kinks of a problem, given the values of its places."""
+def free_places(problem: Problem) -> dict[str, Parameter]:
+    """The parameters that are places, by name."""
+    names = {place.tree.name for place in problem.places if isinstance(place.tree, Name)}
+    return {parameter.name: parameter for parameter in problem.parameters if parameter.name in names}
 
-    def __init__(self, problem: Problem, values: Sequence[float]) -> None:
+
+class Kinks:
+    """The kinks of a problem without arcs, given the values of its places.
+
+    They are looked for from `low` to `high`, from the first place to the last where nothing else is said.  `places` has
+    those found, with their values; `resolved` is the problem with those inside the range at places.  Where places are
+    free it is the same problem as long as none of them passes a kink.
+    """
+
+    def __init__(
+        self, problem: Problem, values: Sequence[float], low: float | None = None, high: float | None = None
+    ) -> None:
+        self.places: list[tuple[float, Place]] = []
         self._problem = problem
-        self._span = values[-1] - values[0]
-        self._places = list(zip(values, problem.places, strict=True))
+        self._first, self._last = values[0], values[-1]
+        self._low, self._high = self._first if low is None else low, self._last if high is None else high
+        self._same = SAME * (self._last - self._first)
+        free = free_places(problem)
+        self._own = list(zip(values, problem.places, strict=True))
+        self._fixed = [(at, own) for at, own in self._own if not (isinstance(own.tree, Name) and own.tree.name in free)]
         swept = {sweep.constant for sweep in problem.sweeps}
         if problem.continuation is not None:
             swept.add(problem.continuation.constant)
@@ -80,11 +92,14 @@ class _Kinks:
         for name, tree in problem.where:
             if self._given(tree):
                 self._where[name] = self._written_out(tree)
+        self.resolved = self._resolved()
 
-    def resolved(self) -> Problem:
+    def _resolved(self) -> Problem:
         """The problem with its kinks at places."""
         changed = reformulated(self._problem, self._branched)
-        changed = replace(changed, places=tuple(place for _, place in self._places))
+        inside = [(at, kink) for at, kink in self.places if self._first < at < self._last]
+        places = tuple(place for _, place in sorted([*self._own, *inside], key=lambda spot: spot[0]))
+        changed = replace(changed, places=places)
         return with_limits_at_kinks(changed, "sign" in rounded_functions(self._problem))
 
     def _branched(self, tree: Node) -> Node:
@@ -104,12 +119,12 @@ class _Kinks:
         first, *others = kink.arguments
         if kink.function in ("sign", "abs"):
             level = self._level(first)
-            return level if kink.function == "sign" else _times(level, parts[0])
+            return level if kink.function == "sign" else times(level, parts[0])
         chosen, best = parts[0], first
         for other, part in zip(others, parts[1:], strict=True):
             level = self._level(Sum((best, other), (False, True)))
-            level = level if kink.function == "max" else _opposite(level)
-            chosen = _plus(_times(_half_more(level), chosen), _times(_half_more(_opposite(level)), part))
+            level = level if kink.function == "max" else opposite(level)
+            chosen = plus(times(half_more(level), chosen), times(half_more(opposite(level)), part))
             best = Call(kink.function, (best, other))
         return chosen
 
@@ -117,10 +132,9 @@ class _Kinks:
         """The sign of a formula as a number for every stretch."""
         tree = self._written_out(argument)
         names = {node.name for node in walk(tree) if isinstance(node, Name)}
-        low, high = self._places[0][0], self._places[-1][0]
-        room = SAME * self._span
+        low, high, room = self._low, self._high, self._same
         if self._problem.independent not in names:
-            return _number(float(np.sign(self._value(tree, np.zeros(1))[0])))
+            return numeral(float(np.sign(self._value(tree, np.zeros(1))[0])))
         try:
             found = [t for t in sign_changes(lambda t: self._value(tree, t), low, high) if low + room < t < high - room]
         except UndefinedError:
@@ -133,22 +147,22 @@ class _Kinks:
             raise _LeftError
         edges = np.array([low, *kinks, high])
         signs = np.sign(self._value(tree, (edges[1:] + edges[:-1]) / 2))
-        level: Node = _number(float(signs[0] + signs[-1]) / 2)
+        level: Node = numeral(float(signs[0] + signs[-1]) / 2)
         for t, jump in zip(kinks, np.diff(signs), strict=True):
             if jump:
-                side = Call(SIDE, (Name(MIDDLE), self._place(t, tree, names)))
-                level = _plus(level, _times(_number(float(jump) / 2), side))
+                place = self._place(t, tree, names)
+                inside = self._first < t < self._last
+                side = Call(SIDE, (Name(MIDDLE), place)) if inside else numeral(1.0 if t <= self._first else -1.0)
+                level = plus(level, times(numeral(float(jump) / 2), side))
         return level
 
     def _place(self, value: float, tree: Node, names: set[str]) -> Node:
         """The tree of the place where a formula changes sign, which is a new one where there is none yet."""
-        for known, place in self._places:
-            if abs(known - value) <= SAME * self._span:
+        for known, place in (*self._fixed, *self.places):
+            if abs(known - value) <= self._same:
                 return place.tree
-        count = 1 + sum(place.label.startswith(KINK + " ") for _, place in self._places)
-        place = Place(self._root(value, tree, names), f"{KINK} {count}")
-        self._places.append((value, place))
-        self._places.sort(key=lambda spot: spot[0])
+        place = Place(self._root(value, tree, names), f"{KINK} {len(self.places) + 1}")
+        self.places.append((value, place))
         return place.tree
 
     def _root(self, value: float, tree: Node, names: set[str]) -> Node:
@@ -170,8 +184,8 @@ class _Kinks:
             return with_children(tree, parts)
         values = [float(self._value(part, at)[0]) for part in parts]
         if tree.function in ("sign", "abs"):
-            side = _number(float(np.sign(values[0])))
-            return side if tree.function == "sign" else _times(side, parts[0])
+            side = numeral(float(np.sign(values[0])))
+            return side if tree.function == "sign" else times(side, parts[0])
         return parts[int(np.argmax(values) if tree.function == "max" else np.argmin(values))]
 
     def _given(self, tree: Node) -> bool:
@@ -197,42 +211,3 @@ class _Kinks:
 
 class _LeftError(Exception):
     """A kink is left to the rounding."""
-
-
-def _number(value: float) -> Node:
-    return Number(value, f"{value:g}") if value >= 0 else Negative(Number(-value, f"{-value:g}"))
-
-
-def _value_of(tree: Node) -> float | None:
-    match tree:
-        case Number(value=value):
-            return value
-        case Negative(operand=Number(value=value)):
-            return -value
-    return None
-
-
-def _times(one: Node, other: Node) -> Node:
-    match _value_of(one):
-        case 1.0:
-            return other
-        case -1.0:
-            return Negative(other)
-        case 0.0:
-            return Number(0.0, "0")
-    return Product((one, other), (False, False))
-
-
-def _plus(one: Node, other: Node) -> Node:
-    return other if _value_of(one) == 0 else one if _value_of(other) == 0 else Sum((one, other), (False, False))
-
-
-def _opposite(level: Node) -> Node:
-    value = _value_of(level)
-    return Negative(level) if value is None else _number(-value + 0.0)
-
-
-def _half_more(level: Node) -> Node:
-    """(1 + level)/2, which is 1 or 0 where the level is 1 or -1."""
-    value = _value_of(level)
-    return _number((1 + value) / 2) if value is not None else _times(HALF, Sum((ONE, level), (False, False)))

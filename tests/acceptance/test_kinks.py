@@ -90,6 +90,54 @@ def test_kinks_along_the_range_cost_nothing(members, value):
     assert any("given along the range" in note for note in found.notes)
 
 
+def to_a_free_end(integrand, within, *endpoints, **members):
+    independent, parameters = {"name": "x", "from": 0, "to": "T"}, {"T": {"within": within} if within else {}}
+    return over(0, 1, integrand, *endpoints) | {"independent": independent, "parameters": parameters} | members
+
+
+RAMP = "y(0) = 0", "y(T) = 3"
+QUICKER = {
+    "unknowns": {"y": {}, "u": {"within": [-1, 1]}},
+    "dynamics": ["y' = u*(2 + sign(x - 1))"],
+    "functional": {"seek": "minimum", "endpoint": "T"},
+}
+FREE = {
+    # y' is 3/T; 9/T + 3 T/2 - 1 is least at T = sqrt(6), behind the step of the rate at 1
+    "behind a kink": (to_a_free_end("y'^2 + 1 + sign(x - 1)/2", [0.1, 10], *RAMP), 6 * math.sqrt(1.5) - 1),
+    # 9/T + T/2 is least at T = sqrt(18), before the step at 5, but far beyond the first guess
+    "before one": (to_a_free_end("y'^2 + 1 + sign(x - 5)/2", [0.1, 10], *RAMP), 6 * math.sqrt(0.5)),
+    # the slope by T jumps from 1/2 - 9/T^2 < 0 to 3/2 - 9/T^2 > 0 at 3.2
+    "on one": (to_a_free_end("y'^2 + 1 + sign(x - 3.2)/2", [0.1, 10], *RAMP), 9 / 3.2 + 1.6),
+    # 1 in the first unit of time, then 3 a unit
+    "where the first guess leads nowhere": (to_a_free_end(None, [0.1, 10], "y(0) = 0", "y(T) = 4", **QUICKER), 2.0),
+    "without limits": (to_a_free_end(None, None, "y(0) = 0", "y(T) = 4", **QUICKER), 2.0),
+    # with a = s - 1 for the switch s: 1/2 + a + a^2 to it, then (1 + 2 a)^2/4, and T = 3/2 + 2 a
+    "with a switch": (
+        to_a_free_end(None, [0.1, 10], "y(0) = 0", "v(0) = 0", "y(T) = 3", "v(T) = 0", **QUICKER | {
+            "unknowns": {"y": {}, "v": {}, "u": {"within": [-1, 1]}},
+            "dynamics": ["y' = v", "v' = u*(3 + sign(x - 1))/2"]}), 0.5 + math.sqrt(5.5)),
+    # to the line x + y = 3 through the thin medium only: straight to (1, 2), where that ends
+    "light to a line": (
+        to_a_free_end("(1.25 + sign(x - 1)/4)*sqrt(1 + y'^2)", [0.1, 4], "y(0) = 0", "y(T) = 3 - T"), math.sqrt(5)),
+}  # fmt: skip
+
+
+@pytest.mark.parametrize("members, value", FREE.values(), ids=FREE)
+def test_a_free_end_finds_its_side_of_every_kink(members, value):
+    found = solve(stated(**members))
+    assert found.verdict in LEAST, [check for check in found.checks if check.status is Status.FAILED]
+    assert abs(found.value - value) <= found.value_error <= 1e-6 * abs(value)
+    assert not any("rounded" in note for note in found.notes)
+    assert all(price.pointer and "kink" not in price.label for price in found.prices)
+
+
+def test_kinks_of_unknowns_with_a_free_end_are_none_of_the_range():
+    """y'^2 + |y'| with y from 0 to 1 costs 1 + 1/T: T is as long as it may be."""
+    found = solve(stated(**to_a_free_end("y'^2 + abs(y')", [0.5, 4], "y(0) = 0", "y(T) = 1")))
+    assert found.verdict in LEAST
+    assert abs(found.value - (1 + 1 / 4)) <= found.value_error
+
+
 def test_the_price_of_an_obstacle_holds_its_push_at_the_tip():
     """Raised by r the tip is 1 + r: the least is (1 + r)^2 (1 + 1/2), with slope 3."""
     found = solve(stated(**CASES["over the tip of a tent"][0]))
