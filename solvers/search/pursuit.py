@@ -38,13 +38,15 @@ CLOSE = 1e-2
 NIMBLE: dict[str, Any] = {
     "ipopt.mu_strategy": "adaptive",
     "ipopt.mu_min": 1e-14,
-    "ipopt.acceptable_iter": 15,
+    "ipopt.acceptable_tol": 1e-10,
+    "ipopt.acceptable_iter": 3,
     "ipopt.max_iter": 25,
 }
 """Options for a start close to its end: a barrier that adapts takes a third of the iterations (4 to 8 instead of 10 to
 28 on obstacles and arcs on limits).  It has to end lower than by default, or the value stays above by what the limits
-together still push; and a start close to its end is acceptable from the first, which must not be enough.  What takes
-longer is not determined well: there such a barrier leads astray, and is not tried again."""
+together still push; and a start close to its end is acceptable from the first by the usual measure, which must not be
+enough, while rounding may keep a large program from the last digits.  What takes longer is not determined well: there
+such a barrier leads astray, and is not tried again."""
 NARROW = 0.1
 """Width of an interval, relative to an even mesh, below which a smaller barrier may help."""
 

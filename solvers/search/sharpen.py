@@ -112,7 +112,7 @@ def with_structure(
     loose: list[Release] = []
     one: Problem | None = None
     seen, pursuit, again = path.program.compiled.lowered.problem, None, False
-    for _ in range(ROUNDS):
+    for round_ in range(ROUNDS):
         found = sorted([*switches(path, linear), *present_switches(path)], key=lambda switch: switch.place)
         changed = one or with_switches(base.problem, found, path, linear, loose)
         if again and changed is not None and alike(changed, seen):
@@ -124,13 +124,13 @@ def with_structure(
         same = alike(changed, seen)
         if same and (again or not at_the_edge(path)):
             break
-        if tried is not None and pursuit is None and any(alike(changed, other) for other in tried):
+        if round_ == 0 and any(alike(changed, other) for other in tried or ()):
             break
         again, one = same, None
         now = pursue(changed, watch, deadline, meshes=2, start=path, mesh=mesh_between(changed, path))
         if not now.solved:
             break
-        if tried is not None:
+        if tried is not None and round_ == 0:
             tried.append(changed)
         path = now.paths[-1]
         seen = changed
