@@ -12,7 +12,7 @@ from solvers.search.record import End, Pursuit
 from solvers.solution import Check, Diagnosis, Finding, Status
 
 KEPT = "The best curve so far is kept"
-NOTHING_KEPT = "No curve had been found by then"
+NOTHING_KEPT = "No best curve had been found by then"
 
 OUT_OF_TIME = f"The time limit was reached before the tolerance. {KEPT}."
 

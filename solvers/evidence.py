@@ -103,7 +103,8 @@ def with_evidence(
     rounded_off = rounding.effect(sampler)
     value, value_error = path.value, pursuit.value_error + rounded_off
     curve_error = _if_finite(pursuit.curve_error)
-    made = checks.run(path, original=problem, value_error=_if_finite(value_error), curve_error=curve_error,
+    same = problem if found.reduced is None else found.reduced.judged  # on every curve
+    made = checks.run(path, original=same, value_error=_if_finite(value_error), curve_error=curve_error,
                       known=known, sampler=sampler)  # fmt: skip
     if conditions.NAME not in known and np.isfinite(taken := conditions.value_anew(sampler)):
         value_error += abs(taken - value)
@@ -140,10 +141,12 @@ def with_evidence(
         if drawn:
             shape, multipliers, altered = as_graph(gauged, shape, multipliers, factor, altered)
         value, stated = gauged.value(value), abs(factor) * value_error
-    loose = () if brief else _undetermined(problem, path, gauged, made, value_error)
+    loose = () if found.reduced is None else found.reduced.undetermined
+    if not brief and not loose:
+        loose = _undetermined(problem, path, gauged, made, value_error)
     kept = {name: functions for name, functions in shape.functions.items() if not name.startswith(SLACK + " ")}
     fitted = None if brief else fit(path)
-    notes = () if brief else (*_notes(problem, pursuit, gauged), *([left_out] if left_out else []))
+    notes = () if brief else (*_notes(problem, found, pursuit), *([left_out] if left_out else []))
     errors = place_errors(pursuit)
     switches = _switches(pursuit, gauged, errors)
     return Solution(
@@ -268,11 +271,10 @@ def _changes(path: Trajectory, depends: Sequence[Slope], shifts: Sequence[Shift]
         return (), UNDETERMINED
 
 
-def _notes(problem: Problem, pursuit: Pursuit, gauged: Gauged | None) -> list[str]:
+def _notes(problem: Problem, found: Found, pursuit: Pursuit) -> list[str]:
     """What was done to the problem that its reader should know."""
-    notes = []
-    if gauged is not None:
-        notes.append(gauged.note)
+    gauged = found.gauged
+    notes = [form.note for form in (gauged, found.reduced) if form is not None]
     if len(pursuit.problem.unknowns) > len(problem.unknowns) and gauged is None:
         notes.append("abs, max or min in the integrand: written exactly, with auxiliary unknowns that bound them.")
     if any(place.label.startswith(KINK + " ") for place in pursuit.problem.places):

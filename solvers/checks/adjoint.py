@@ -126,6 +126,9 @@ def _solved(system: Array, right: Array) -> Array:
 def continued(sampler: Sampler, steps: Steps) -> Continued:
     """The costates at the wanted places of every interval."""
     count, n = sampler.count, sampler.point.states
+    if n == 0:
+        none = np.zeros((count, 0))
+        return Continued(np.zeros((count * len(steps.wanted), 0)), none, np.arange(count), np.zeros(count, dtype=bool))
     left, right = sampler.costate_ends[:, 0], sampler.costate_ends[:, 1]
     joined = np.append(np.diff(sampler.stretch) == 0, False)  # the next interval belongs to the same stretch
     start = right.copy()

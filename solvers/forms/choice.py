@@ -8,9 +8,11 @@ from functools import cache
 import numpy as np
 
 from solvers.deadline import Deadline
+from solvers.forms.affine import Reduced, reduced
 from solvers.forms.broken import with_corner
 from solvers.forms.first_look import at_constant_speed, first_look
 from solvers.forms.gauge import Form, Gauged
+from solvers.forms.jumping import solve_without_slopes
 from solvers.forms.kinks import at_kinks
 from solvers.forms.kinks_by_ends import by_ends
 from solvers.forms.ridge import off_ridge
@@ -35,12 +37,15 @@ DOUBTFUL = 0.5
 class Found:
     """The pursuit of the form in which a problem was solved; `gauged` says how where that is parametric.
 
+    `reduced` tells the form without slopes of a problem whose integrand is linear in them.
+
     `work` is the processor time in seconds that it took, where somebody needs to know.
     """
 
     pursuit: Pursuit
     gauged: Gauged | None
     work: float = float("inf")
+    reduced: Reduced | None = None
 
 
 def solve_in_best_form(problem: Problem, watch: Watch | None, deadline: Deadline, form: Form) -> Found:
@@ -58,6 +63,9 @@ def _solve(stated: Problem, problem: Problem, watch: Watch | None, deadline: Dea
         pursuit = solve_as_given(with_slacks(with_widths(problem)), watch, deadline)
         if pursuit.end in (End.CONVERGED, End.STOPPED, End.TIME):
             return Found(pursuit, None)
+    if (alike := reduced(problem)) is not None:
+        pursuit = solve_without_slopes(alike, watch, deadline)
+        return Found(pursuit, None, reduced=alike if isinstance(alike, Reduced) else None)
     look = cache(lambda: first_look(problem))
     for squared in (True, False):
         gauged = form(problem, lambda: look().sizes, squared)

@@ -22,6 +22,7 @@ from collections.abc import Callable, Iterator, Mapping
 from contextlib import suppress
 from dataclasses import dataclass, replace
 
+from solvers.forms.affine import linear_by_parts
 from solvers.forms.free_kinks import at_free_places
 from solvers.forms.homogeneous import Homogeneous, OtherGrowthError
 from solvers.formula.evaluate import REAL, evaluate
@@ -121,6 +122,8 @@ def in_parametric_form(problem: Problem, sizes: Sizes, squared: bool) -> Gauged 
     squared = squared and problem.seek is not Seek.STATIONARY and problem.endpoint is None and not integrals
     if len(names) > 1 and _given(problem) and is_invariant(problem, form, (problem.integrand, *integrals)):
         return _with_speed(problem, form, sizes, squared)
+    if all(linear_by_parts(body, problem) for body in (problem.integrand, *integrals)):
+        return None  # nothing in it bends with the slope: a parametric form would not be held by it either
     try:
         degrees = [form.of(body)[1] for body in (problem.integrand, *integrals)]
     except OtherGrowthError:
