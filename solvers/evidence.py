@@ -17,13 +17,13 @@ from solvers.answers.sensitivity import Shift, limit_shifts, slopes
 from solvers.answers.stretches import stretches
 from solvers.checks import conditions, curvature, lower_bound, refinement, rounding
 from solvers.checks.redundancy import unambiguous
-from solvers.checks.sampling import Sampler
+from solvers.checks.sampling import Asked, Sampler
 from solvers.curve import Curve
 from solvers.deadline import in_seconds
 from solvers.diagnosis import diagnose, with_feasibility
 from solvers.forms.choice import Found
 from solvers.forms.gauge import Gauged
-from solvers.forms.graph import as_graph, checks_on_graph, prices_of_original, uprights
+from solvers.forms.graph import as_graph, checks_on_graph, prices_of_original, steps_of_original, uprights
 from solvers.forms.slack import SLACK
 from solvers.minimise.ipopt import FLOOR
 from solvers.problem import KINK, Problem, Seek
@@ -89,17 +89,18 @@ def with_evidence(
         pursuit = replace(pursuit, end=End.AWAY, findings=findings) if findings else pursuit
     diagnosis = diagnose(pursuit)
     times = {"solve": solved_at - began}
+    meshes = tuple(pursuit.steps) if gauged is None else steps_of_original(gauged, pursuit.steps)
     if not pursuit.solved:
         if diagnosis is not None and gauged is not None and gauged.graph:  # their places are in the parameter
             diagnosis = replace(diagnosis, findings=tuple(replace(f, place=None) for f in diagnosis.findings))
         nearest = None if pursuit.nearest is None or gauged is not None else curve(pursuit.nearest)
-        return Solution(EARLY.get(pursuit.end), curve=nearest, diagnosis=diagnosis, meshes=tuple(pursuit.steps),
+        return Solution(EARLY.get(pursuit.end), curve=nearest, diagnosis=diagnosis, meshes=meshes,
                         iterations=pursuit.iterations, times=times)  # fmt: skip
     path = unambiguous(pursuit.paths[-1])
     names = {p.name for p in problem.parameters}
     parameters = {p.name: float(v) for p, v in zip(pursuit.problem.parameters, path.parameters, strict=True)
                   if p.name in names}  # fmt: skip
-    sampler = Sampler(path)
+    sampler = Sampler(path, None if gauged is None else Asked(problem.seek, gauged.value))
     rounded_off = rounding.effect(sampler)
     value, value_error = path.value, pursuit.value_error + rounded_off
     curve_error = _if_finite(pursuit.curve_error)
@@ -163,7 +164,7 @@ def with_evidence(
         checks=made,
         diagnosis=diagnosis,
         undetermined=loose,
-        meshes=tuple(pursuit.steps),
+        meshes=meshes,
         iterations=pursuit.iterations,
         times=times | {"checks": time.perf_counter() - solved_at},
         fit=fitted,

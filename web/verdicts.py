@@ -65,7 +65,7 @@ _CHECKS = {
     "first integral": "what must stay constant along the curve",
     "corners": "the Hamiltonian on both sides of every corner (Weierstrass, Erdmann)",
     "Weierstrass": "other values of the controls, however far (excess function)",
-    "lower bound": "the least that the integrand can be, by interval arithmetic",
+    "lower bound": "the best that the integrand can be, by interval arithmetic",
     "slope growth": "whether a slope grows without bound, where curves of bounded slope may miss the best value",
     "Legendre": "sign of the second derivative in the free controls",
     "conjugate points": "second variation over the whole curve",

@@ -38,12 +38,14 @@ def check(sampler: Sampler, value_error: float | None = None) -> Check:
         size = max([sizes[index], *(abs(limit) for limit in (least, most) if np.isfinite(limit))]) or 1.0
         findings.append((_outside(float(bodies[index]), least, most) / size, None, condition.label))
     value = cost + float(bodies[-1])
-    allowed = max(1.0, (value_error or 0.0) / (threshold * max(abs(path.value), sampler.value_size)))
-    gap = abs(value - path.value) / max(abs(path.value), sampler.value_size) / allowed
+    worth = sampler.asked.value  # what the user's functional makes of it
+    size = abs(worth(max(abs(path.value), sampler.value_size)))
+    known = abs(worth(path.value + (value_error or 0.0)) - worth(path.value))
+    gap = abs(worth(value) - worth(path.value)) / size / max(1.0, known / (threshold * size))
     findings.append((gap if np.isfinite(gap) else np.inf, None, "the value"))
     figure, place, subject = max(findings, key=lambda finding: finding[0])
     if subject == "the value":
-        sentence = f"The functional, integrated anew, is {value:.10g}; that is {figure:.1e} off the value."
+        sentence = f"The functional, integrated anew, is {sampler.told(value)}; that is {figure:.1e} off the value."
     elif figure == 0:
         sentence = "Every condition holds exactly."
     else:

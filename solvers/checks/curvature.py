@@ -1,12 +1,11 @@
-"""Is the second variation positive, and if not, from where on (the first conjugate point)?
+"""Is the second variation positive (no conjugate point)?
 
 The second variation (`variation`) must be positive on all variations that keep dynamics and active limits.  Constraints
 that couple neighbours only enter as a penalty, (J dz)^2 / e, which keeps the matrix banded in the order of the curve;
 the few that couple everything (integrals, conditions) and the free numbers stand in a border, together with the last
 interval (without it an eigenvalue problem's band would be singular at its very eigenvalue).  The pivots of the band
-count its negative directions (Sylvester), those of the Schur complement the rest (Haynsworth).  Variations that
-vanish from some place on belong to a leading part, and the first part that has a negative one ends at the first
-conjugate point (Jacobi).
+count its negative directions (Sylvester), those of the Schur complement the rest (Haynsworth).  Where there is one and
+nothing but the dynamics holds the neighbours, `jacobi` finds the first conjugate point.
 
 Both answers are safe.  A pass holds for any e, since the penalty vanishes on the variations in question.  A negative
 direction keeps the constraints (of few variables their kernel is computed, of many the direction is put back onto them)
@@ -30,6 +29,7 @@ from solvers.checks import legendre
 from solvers.checks.sampling import Sampler
 from solvers.checks.second_order import Second, hessian_of_program, second_order
 from solvers.deadline import FOREVER, Deadline
+from solvers.problem import Seek
 from solvers.solution import Check, Status
 
 Flags = NDArray[np.bool_]
@@ -58,7 +58,7 @@ def check(sampler: Sampler, deadline: Deadline = FOREVER, curve_error: float = 0
 
 
 def _decided(sampler: Sampler, deadline: Deadline, margin: float) -> Check:
-    from solvers.checks import inertia  # here, so that a worker that waits has not loaded SciPy
+    from solvers.checks import inertia, jacobi  # here, so that a worker that waits has not loaded SciPy
 
     program = sampler.path.program
     if program.layout.size > LARGEST:
@@ -81,10 +81,11 @@ def _decided(sampler: Sampler, deadline: Deadline, margin: float) -> Check:
         again = replace(second, hessian=hessian_of_program(sampler.path))
         share = float(np.maximum(*(inertia.quotients(form, directions) for form in (second, again))).min())
         if share < -margin:
-            place = _conjugate(sampler, second, free, rows, margin, deadline)
-            return Check(NAME, Status.FAILED, "A variation that keeps all conditions lowers the functional in second "
-                         f"order by {-share:.1e} of its size; the first such vanishes beyond the place given.",
-                         -share, margin, place)  # fmt: skip
+            place = jacobi.first_conjugate(sampler) if jacobi.applies(sampler, second) else None
+            where = ("better curves lie in that direction" if place is None else
+                     "the first point conjugate to the beginning is the place given")  # fmt: skip
+            return Check(NAME, Status.FAILED, f"A variation that keeps all conditions {sampler.lowers} the functional "
+                         f"in second order by {-share:.1e} of its size: {where}.", -share, margin, place)  # fmt: skip
     return Check(NAME, Status.NOT_APPLICABLE, "Not decided: the second variation vanishes in some direction (within "
                  f"{margin:.0e} of the functional), as along families of equally good curves.")  # fmt: skip
 
@@ -96,20 +97,6 @@ def _sentence(sampler: Sampler, second: Second, free: Flags) -> str:
         share = float(sampler.mean(held.all(axis=1).astype(float)))
         if share > 0.9:
             return ("Bang-bang: the controls are pushed against their bounds strictly, but for the switches, and no "
-                    "change of the switches that keeps the conditions lowers the functional.")  # fmt: skip
-    return "The second variation is positive on all variations that keep the conditions: no conjugate point."
-
-
-def _conjugate(sampler: Sampler, second: Second, free: Flags, rows: Flags, margin: float, deadline: Deadline) -> float:
-    """The first break such that a variation that vanishes beyond it is negative, by bisection (as far as time goes)."""
-    from solvers.checks import inertia
-
-    where = sampler.path.program.layout
-    low, high = 0, sampler.count
-    while high - low > 1 and not deadline.over:
-        middle = (low + high) // 2
-        kept = free.copy()
-        kept[where.nodes[middle, 0] if sampler.point.states else where.controls[where.first[middle], 0] :] = False
-        found = inertia.count_negative(second, kept, rows, margin)
-        low, high = (low, middle) if found else (middle, high)
-    return float(sampler.path.breaks[high])
+                    f"change of the switches that keeps the conditions {sampler.lowers} the functional.")  # fmt: skip
+    sign = "negative" if sampler.asked.seek is Seek.MAXIMUM else "positive"
+    return f"The second variation is {sign} on all variations that keep the conditions: no conjugate point."

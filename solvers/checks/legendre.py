@@ -14,6 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from solvers.checks.sampling import Sampler
+from solvers.problem import Seek
 from solvers.solution import Check, Status
 from solvers.transcription.limits import constants_of, interval_of
 
@@ -40,16 +41,19 @@ def check(sampler: Sampler) -> Check:
     figure = float(sampler.mean(np.where(np.isfinite(negative), negative, np.inf)))
     worst = int(np.argmax(negative))
     place = float(sampler.halves.places[worst]) if figure > 0 else None
+    greatest = sampler.asked.seek is Seek.MAXIMUM  # and then the user's Hamiltonian has the other sign
     if figure > threshold:
-        return Check(NAME, Status.FAILED, "The Hamiltonian bends downwards in the free controls: faster wiggles of "
-                     "the curve lower the functional.", figure, threshold, place)  # fmt: skip
+        bends, change = ("upwards", "raise") if greatest else ("downwards", "lower")
+        return Check(NAME, Status.FAILED, f"The Hamiltonian bends {bends} in the free controls: faster wiggles of "
+                     f"the curve {change} the functional.", figure, threshold, place)  # fmt: skip
     flat = float(np.abs(sampler.halves.measure)[free & (np.abs(least) <= FLAT)].sum())
     whole = float(np.abs(sampler.halves.measure)[free].sum())
     if flat > 0.999 * whole:
         return Check(NAME, Status.NOT_APPLICABLE, "The Hamiltonian is linear in the free controls: bang-bang or "
                      "singular, Legendre's condition says nothing.")  # fmt: skip
     strictly = "strictly " if flat < 1e-3 * whole else ""
-    return Check(NAME, Status.PASSED, f"The Hamiltonian is {strictly}convex in the free controls along the curve.",
+    shape = "concave" if greatest else "convex"
+    return Check(NAME, Status.PASSED, f"The Hamiltonian is {strictly}{shape} in the free controls along the curve.",
                  figure, threshold, place)  # fmt: skip
 
 

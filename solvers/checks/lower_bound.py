@@ -37,11 +37,12 @@ def check(sampler: Sampler) -> Check:
     if abs(short) <= allowed:
         short = sampler.sign * (conditions.value_anew(sampler) - bound)
     figure, threshold = short / allowed * sampler.tolerance, sampler.tolerance
-    word = "above" if sampler.sign < 0 else "below"
+    word = "above" if sampler.asked.seek is Seek.MAXIMUM else "below"
+    told = sampler.told(bound)
     if abs(short) <= allowed:
-        return Check(NAME, Status.PASSED, f"No curve has a value {word} {bound:.10g}, as no value of the integrand is "
+        return Check(NAME, Status.PASSED, f"No curve has a value {word} {told}, as no value of the integrand is "
                      "any better, and this curve reaches it.", abs(figure), threshold)  # fmt: skip
-    return Check(NAME, Status.NOT_APPLICABLE, f"No curve has a value {word} {bound:.10g}; this one does not reach it.",
+    return Check(NAME, Status.NOT_APPLICABLE, f"No curve has a value {word} {told}; this one does not reach it.",
                  figure, threshold)  # fmt: skip
 
 

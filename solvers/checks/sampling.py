@@ -6,6 +6,7 @@ their constant bounds (that is what is handed over), and the point function is e
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 from functools import cached_property
 
@@ -47,15 +48,28 @@ class Sample:
     measure: Array
 
 
-class Sampler:
-    """A trajectory (N intervals, n states, m controls, c pointwise constraints) that can be asked anywhere."""
+@dataclass(frozen=True, slots=True)
+class Asked:
+    """What was asked for, where an equivalent form of it was solved: minimum or maximum, and `value`, which turns a
+    value of the form (SI) into one of the user's functional (SI)."""
 
-    def __init__(self, path: Trajectory) -> None:
+    seek: Seek
+    value: Callable[[float], float] = float
+
+
+class Sampler:
+    """A trajectory (N intervals, n states, m controls, c pointwise constraints) that can be asked anywhere.
+
+    `asked` is said where the mesh is of another form than the one that was asked for.
+    """
+
+    def __init__(self, path: Trajectory, asked: Asked | None = None) -> None:
         self.path = path
         self.compiled = path.program.compiled
         self.point = self.compiled.point
         self.problem = self.compiled.lowered.problem
         self.tolerance = self.problem.options.tolerance
+        self.asked = asked or Asked(self.problem.seek)
         self.sign = -1.0 if self.problem.seek is Seek.MAXIMUM else 1.0
         mesh = path.program.mesh.intervals
         self.count = len(mesh)
@@ -312,6 +326,16 @@ class Sampler:
     def value_size(self) -> float:
         """The size of the functional that first-order changes are compared with."""
         return float(self.power * abs(self.span))
+
+    @property
+    def lowers(self) -> str:
+        """What a better curve does to the user's functional, as a word."""
+        return "raises" if self.asked.seek is Seek.MAXIMUM else "lowers"
+
+    def told(self, value: float) -> str:
+        """A value of the solved form as one of the user's functional, in its unit."""
+        unit = self.problem.value_unit
+        return f"{self.asked.value(value) / unit.factor:.10g}{' ' if unit.text else ''}{unit.text}"
 
     @property
     def program_value(self) -> float:

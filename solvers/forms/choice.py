@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cache
 
 import numpy as np
@@ -25,7 +25,7 @@ from solvers.search.given import solve_as_given
 from solvers.search.pursuit import go_on
 from solvers.search.record import End, Pursuit
 from solvers.search.widths import with_widths
-from solvers.solution import Watch
+from solvers.solution import Progress, Watch
 
 LOST = (End.FAILED, End.UNDEFINED)
 """Ends from which another first guess may help."""
@@ -76,20 +76,33 @@ def _solve(stated: Problem, problem: Problem, watch: Watch | None, deadline: Dea
             continue
         room = deadline.within(DOUBTFUL * deadline.left) if doubtful else deadline
         gauged = gauged if gauged.squared else at_constant_speed(gauged, look())
-        pursuit = solve_as_given(with_slacks(with_widths(gauged.problem)), watch, room)
+        hear = _in_original_terms(gauged, watch)
+        pursuit = solve_as_given(with_slacks(with_widths(gauged.problem)), hear, room)
         if squared and pursuit.end in LOST and gauged.graph:  # its square has values where a root has none
             gauged = where_defined(at_constant_speed(gauged, look()))
-            pursuit = solve_as_given(with_slacks(with_widths(gauged.problem)), watch, room)
+            pursuit = solve_as_given(with_slacks(with_widths(gauged.problem)), hear, room)
         if squared and pursuit.solved and not rightly_squared(gauged, pursuit, doubtful):
             if (best := at_bound(problem, pursuit)) is not None:
                 return Found(best, None)
             continue
         if doubtful and pursuit.solved and pursuit.end is End.TIME:
-            pursuit = go_on(pursuit, watch, deadline)
+            pursuit = go_on(pursuit, hear, deadline)
         if (pursuit.solved and pursuit.end is not End.TORN) or pursuit.end in (End.STOPPED, End.TIME):
             return Found(pursuit, gauged)
     pursuit = solve_as_given(with_slacks(with_widths(problem)), watch, deadline)
     return Found(off_ridge(pursuit, watch, deadline) or with_corner(pursuit, watch, deadline) or pursuit, None)
+
+
+def _in_original_terms(gauged: Gauged, watch: Watch | None) -> Watch | None:
+    """Hears of the parametric form and tells of the original: its values, and no places of the parameter."""
+    if watch is None:
+        return None
+
+    def hear(progress: Progress) -> bool:
+        value = None if progress.value is None else gauged.value(progress.value)
+        return watch(replace(progress, value=value, breaks=None if gauged.graph else progress.breaks))
+
+    return hear
 
 
 def rightly_squared(gauged: Gauged, pursuit: Pursuit, doubtful: bool) -> bool:

@@ -90,7 +90,8 @@ class Gauged:
         """The original's value for one of the parametric form."""
         if not self.squared:
             return found
-        return -math.sqrt(found) if self.original.seek is Seek.MAXIMUM else math.sqrt(found)
+        root = math.sqrt(max(found, 0.0))
+        return -root if self.original.seek is Seek.MAXIMUM else root
 
     def slope(self, found: float) -> float:
         """The derivative of the original's value by that of the parametric form."""

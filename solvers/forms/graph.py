@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable
+from collections.abc import Callable, Iterable, Sequence
 from dataclasses import replace
 from functools import partial
 
@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from solvers.curve import Curve
 from solvers.forms.gauge import Gauged, Way
 from solvers.forms.regraph import regraph
-from solvers.solution import Change, Check, Finding, Price
+from solvers.solution import Change, Check, Finding, MeshStep, Price
 from solvers.transcription.limits import number
 
 Array = NDArray[np.float64]
@@ -125,6 +125,11 @@ def checks_on_graph(gauged: Gauged, shape: Curve, checks: tuple[Check, ...]) -> 
         check if check.place is None else replace(check, place=float(shape.evaluate(x, np.array([check.place]))[0]))
         for check in checks
     )
+
+
+def steps_of_original(gauged: Gauged, steps: Sequence[MeshStep]) -> tuple[MeshStep, ...]:
+    """The meshes with the original's values."""
+    return tuple(step if step.value is None else replace(step, value=gauged.value(step.value)) for step in steps)
 
 
 def prices_of_original(prices: tuple[Price, ...], factor: float) -> tuple[Price, ...]:

@@ -68,6 +68,26 @@ def test_linear_growth_is_solved_in_parametric_form_and_told_in_x():
     assert "parametric form" in solution.notes[0]
 
 
+@pytest.mark.parametrize("seek", ["minimum", "maximum"])
+def test_the_user_reads_of_his_functional_whatever_form_was_solved(seek):
+    """The soap film between rings of height 3 cosh(1/2): 9/2 (1 + sinh 1).  Its square is what was minimised."""
+    sign = 1 if seek == "minimum" else -1
+    film = {
+        "functional": {"seek": seek, "integrand": f"{sign}*y*sqrt(1 + y'^2)"},
+        "endpoints": ["y(0) = h", "y(3) = h"],
+    }
+    signs = []
+    solution = solve(shape(**film, constants={"h": 3 * float(np.cosh(0.5))}),
+                     lambda progress: signs.append(progress.value) or False)  # fmt: skip
+    told = {check.name: check.sentence for check in solution.checks}
+    value = sign * 4.5 * (1 + float(np.sinh(1.0)))
+    assert solution.value == pytest.approx(value)
+    assert f"is {value:.5g}" in told["conditions"]
+    assert [mesh.value for mesh in solution.meshes] == pytest.approx([value] * len(solution.meshes), rel=1e-2)
+    assert signs[-1] == pytest.approx(value)
+    assert told["Legendre"].count("convex") == (sign > 0)
+
+
 def test_of_two_soap_films_the_stable_one_is_found():
     """Between rings of height cosh(3/2) the film y = cosh(x - 3/2) is an extremal too, but not a minimum."""
     ring = {"h": float(np.cosh(1.5))}
