@@ -306,7 +306,7 @@ def _misread(error: RequestValidationError) -> Fault:
             "in": str(problem["loc"][0]),
             "code": str(problem["type"]).replace("_", "-"),
             "message": _MESSAGES.get(problem["type"], "{name}: {message}.").format(
-                name=problem["loc"][-1], message=problem["msg"]
+                name=problem["loc"][-1], message=problem["msg"], **problem.get("ctx", {})
             ),
         }
         for problem in error.errors()
@@ -317,7 +317,17 @@ def _misread(error: RequestValidationError) -> Fault:
     return Fault("parameters", detail, complaints=complaints)
 
 
-_MESSAGES = {
+_MESSAGES: Mapping[str, str] = {
     "extra_forbidden": "There is no parameter '{name}'.",
     "missing": "The parameter '{name}' is missing.",
+    "literal_error": "{name} is one of {expected}.",
+    "enum": "{name} is one of {expected}.",
+    "int_parsing": "{name} has to be a whole number.",
+    "int_parsing_size": "{name} has too many digits.",
+    "int_from_float": "{name} has to be a whole number.",
+    "float_parsing": "{name} has to be a number.",
+    "bool_parsing": "{name} has to be true or false.",
+    "greater_than_equal": "{name} has to be at least {ge}.",
+    "less_than_equal": "{name} has to be at most {le}.",
+    "string_too_long": "{name} has more than {max_length} characters.",
 }

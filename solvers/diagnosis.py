@@ -131,9 +131,9 @@ def _of_conflicts(pursuit: Pursuit) -> str:
     sentence = f"{begin} {sets[0]}." if sets else f"{begin} all conditions together."
     sentence += "".join(f" Nor {other}." for other in sets[1:])
     if any(len(conflict) > 1 for conflict in pursuit.conflicts):
-        sentence += (
-            " Without any one of them the others can be met; the amounts say how far each would have to give alone."
-        )
+        whose = "" if len(sets) == 1 else " of a conflict"
+        sentence += (f" Without any one of them the others{whose} can be met; the amounts say how far each would have "
+                     "to give alone.")  # fmt: skip
     broken = "; ".join(_with_amount(pursuit, finding) for finding in pursuit.broken[:MOST_BROKEN])
     if broken and not (proved and sets):
         sentence += f" The least that has to give{'' if proved else ' near the best that was found'}: {broken}."

@@ -31,10 +31,10 @@ VERDICTS = tuple(_MEANINGS)
 """All that a result may be called."""
 
 _REASONS = {
-    "infeasible": ("No curve meets all conditions", "Loosen or drop one of these conditions and solve again."),
+    "infeasible": ("No curve meets all conditions", "Loosen or drop {one} and solve again."),
     "no curve found": (
         "No curve was found that meets all conditions",
-        "Loosen or drop one of these conditions, or give a guess that comes near to a curve, and solve again.",
+        "Loosen or drop {one}, or give a guess that comes near to a curve, and solve again.",
     ),
     "undefined": ("A formula has no value or no derivative where the search begins", ""),
     "out of time": ("The time limit ended the search", ""),
@@ -54,7 +54,7 @@ _REASONS = {
         "below says which problem it was.",
     ),
 }
-"""Reason -> heading, and advice where the sentence of the diagnosis gives none."""
+"""Reason -> heading, and advice where the sentence of the diagnosis gives none; `one` is what would have to give."""
 
 _CHECKS = {
     "motion": "dynamics integrated again from the stored controls, interval by interval",
@@ -84,9 +84,11 @@ def verdict_sentence(verdict: str | None, checks: Sequence[Mapping[str, Any]]) -
     return meaning
 
 
-def reason_heading(reason: str) -> tuple[str, str]:
-    """Heading and advice for the reason of a diagnosis; an unknown one is said as it is."""
-    return _REASONS.get(reason, (f"No full result: {reason}" if reason else "No full result", ""))
+def reason_heading(reason: str, conflicts: int = 1) -> tuple[str, str]:
+    """Heading and advice for the reason of a diagnosis with so many conflicts; an unknown reason is said as it is."""
+    heading, advice = _REASONS.get(reason, (f"No full result: {reason}" if reason else "No full result", ""))
+    one = "one condition of each conflict" if conflicts > 1 else "one of these conditions"
+    return heading, advice.format(one=one)
 
 
 def check_method(name: str) -> str:

@@ -81,7 +81,8 @@ def assemble(document: Document) -> Problem:
     refuse(Stage.UNITS, units.complaints)
 
     stated = (*formulas.endpoints, *formulas.constraints, *(c for arc in formulas.arcs for c in arc.constraints))
-    refuse(Stage.CONDITIONS, [found for statement in stated for found in says_nothing(statement, meaning)])
+    pointless = (says_nothing(statement, sides[statement.pointer], meaning, constants) for statement in stated)
+    refuse(Stage.CONDITIONS, [complaint for found in pointless for complaint in found])
     check_points(document, readings)
     measured_at = (place for found in readings for place in found.places)
     places = find_places(formulas, units, dict(declared.parameters), measured_at)

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import replace
 
-from service.assemble.freedom import Structure
+from service.assemble.freedom import Freedom, Structure
 from service.assemble.matching import Matching
 from service.assemble.orders import derivatives, reach_of
 from service.assemble.quoting import quoted
@@ -16,6 +16,9 @@ from solvers.forms.beside import side_by_side
 from solvers.formula.nodes import At, Name, Node, walk
 from solvers.observations import placed, terminal
 from solvers.problem import Condition, Problem
+
+MOST_NAMED = 4
+"""Most equations that a complaint about too many conditions names."""
 
 
 def check(problem: Problem) -> None:
@@ -141,14 +144,27 @@ def _too_many_conditions(problem: Problem, structure: Structure) -> Iterator[Com
         together = matching.too_much(index)
         free = {freedom for other in together for freedom in wants[other]}
         labels = listing(quoted(conditions[other].label) for other in together)
-        message = f"{len(together)} conditions for {_count(free)}: {labels}."
+        message = f"{len(together)} conditions for {_count(free)}: {labels}{_given(structure, free)}."
         hint = "Leave one of them out, or free something: an end, a parameter, a control."
         if len(together) == 1:
             message = f"Nothing can meet {quoted(conditions[index].label)}: there is nothing free in it."
         yield Complaint(conditions[index].pointer, None, "too-many-conditions", message, hint)
 
 
-def _count(free: set[tuple[str, int, int] | str]) -> str:
+def _given(structure: Structure, free: set[Freedom]) -> str:
+    """Which equations took the freedom: those that give the course of what the conditions are about."""
+    named = {item[0] for item in free if isinstance(item, tuple)} - structure.free
+    serves = structure.matching.serves
+    given = {serves[other] for name in named for other in structure.influences(name) if other in serves}
+    labels = [quoted(structure.equations[index].label) for index in sorted(given)]
+    if not labels:
+        return ""
+    if len(labels) > MOST_NAMED:
+        labels[MOST_NAMED - 1 :] = [f"{len(labels) - MOST_NAMED + 1} more equations"]
+    return f"; {listing(labels)} {'give' if len(labels) > 1 else 'gives'} the course of {listing(sorted(named))}"
+
+
+def _count(free: set[Freedom]) -> str:
     values = sorted({name + "'" * order for name, order, _ in (item for item in free if isinstance(item, tuple))})
     parameters = sorted(item for item in free if isinstance(item, str))
     return f"{len(free)} free number{'s' * (len(free) != 1)} ({listing([*values, *parameters])})"

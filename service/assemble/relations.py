@@ -8,7 +8,7 @@ from dataclasses import dataclass, replace
 from itertools import pairwise
 
 from service.assemble.dimensions import Sort, Units, leader
-from service.assemble.domain import literal, value_of
+from service.assemble.domain import Values, literal, value_of
 from service.assemble.formulas import Formula, Statement
 from service.assemble.meaning import Meaning
 from service.assemble.quoting import quoted
@@ -20,6 +20,8 @@ from solvers.problem import Condition
 from solvers.units import PLAIN, Unit
 
 ZERO = Number(0.0, "0")
+ROUNDING = 1e-12
+"""Given numbers that differ by less, relatively, are equal in other units."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -82,13 +84,28 @@ def shown_unit(measures: list[Measure]) -> Unit:
     return measures[0].coherent.unit if measures else PLAIN
 
 
-def says_nothing(statement: Statement, meaning: Meaning) -> Iterator[Complaint]:
+def says_nothing(statement: Statement, sides: Sides, meaning: Meaning, constants: Values) -> Iterator[Complaint]:
     """Given numbers side by side: true or false whatever the curve is."""
-    for left, right in pairwise(statement.tree.sides):
+    numbers = zip(pairwise(statement.tree.sides), pairwise(sides.trees), statement.tree.signs, strict=True)
+    for (left, right), converted, sign in numbers:
         if meaning.of(left, right).fixed:
-            message = f"{quoted(left)} and {quoted(right)} are both given numbers: this says nothing about the curve."
             span = Span(left.span.start, right.span.end)
-            yield statement.complaint(span, "says-nothing", message, "Leave it out, or compare with an unknown.")
+            code, message = "says-nothing", f"{quoted(left)} and {quoted(right)} are both given numbers: this says "
+            message += "nothing about the curve."
+            if _false(*converted, sign, constants):
+                code, message = "contradiction", f"{quoted(left)} {sign} {quoted(right)} is false, whatever the curve."
+            yield statement.complaint(span, code, message, "Leave it out, or compare with an unknown.")
+
+
+def _false(left: Node, right: Node, sign: str, constants: Values) -> bool:
+    """Whether given numbers do not compare like this; False also where one of them has no value by itself."""
+    try:
+        one, other = value_of(left, constants), value_of(right, constants)
+    except (ArithmeticError, ValueError, LookupError):
+        return False
+    if math.isclose(one, other, rel_tol=ROUNDING):
+        return False
+    return sign == "=" or (one > other) == (sign == "<=")
 
 
 def conditions(

@@ -126,6 +126,25 @@ def test_a_table_that_cannot_be_made_says_why(client, line, query, code):
     assert [complaint["code"] for complaint in answer.json()["complaints"]] == [code]
 
 
+@pytest.mark.parametrize(
+    ("address", "status", "says"),
+    [
+        ("table.csv?rows=1", 422, "1 row cannot hold both ends."),
+        ("table.csv?columns=foo", 422, "The columns are x, y, and its derivatives, such as y'."),
+        ("table.csv?rows=ten", 422, "rows has to be a whole number."),
+        ("table.csv?sigma=perhaps", 422, "sigma has to be true or false."),
+        ("table.csv?extremal=0", 422, "extremal has to be at least 1."),
+        ("curve.csv", 404, "part is one of 'stretches', 'costates'"),
+        ("table.pdf", 404, "suffix is one of 'csv', 'json', 'xlsx' or 'npz'."),
+    ],
+)
+def test_what_is_wrong_with_an_address_is_said_in_our_own_words(client, line, address, status, says):
+    answer = client.get(f"{line['links']['self']}/{address}")
+    assert answer.status_code == status
+    assert says in answer.json()["detail"]
+    assert "Input should" not in answer.text
+
+
 def test_a_sweep_is_solved_and_handed_over(client, post):
     document = {
         **LINE,

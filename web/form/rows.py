@@ -5,6 +5,7 @@ from __future__ import annotations
 import json
 import math
 import re
+from collections.abc import Iterator
 from typing import Any
 
 NUMBER = re.compile(r"[+-]?(\d+\.?\d*|\.\d+)([eE][+-]?\d+)?", re.ASCII)
@@ -26,17 +27,31 @@ def rows_from_text(text: str) -> list[list[int | float | None]] | None:
 
     A first line that is one number shorter than all others is the head of a grid: its empty corner becomes null.
     """
-    rows: list[list[int | float | None]] = []
-    for line in text.splitlines():
-        parts = [part for part in _BETWEEN.split(line.strip()) if part]
-        numbers = [number_from(part) for part in parts]
-        if any(number is None and part != "null" for number, part in zip(numbers, parts, strict=True)):
-            return None
-        if numbers:
-            rows.append(numbers)
+    if no_number_in(text) is not None:
+        return None
+    rows = [[number_from(part) for part in parts] for _, parts in _parts(text)]
     if len(rows) > 2 and len(rows[1]) > 2 and all(len(row) == len(rows[0]) + 1 for row in rows[1:]):
         rows[0].insert(0, None)
     return rows
+
+
+def no_number_in(text: str) -> tuple[int, str] | None:
+    """The first thing that is no number, and the line, counted from 1, on which it stands."""
+    return next(((line, part) for line, parts in _parts(text) for part in parts
+                 if part != "null" and number_from(part) is None), None)  # fmt: skip
+
+
+def line_of_row(text: str, row: int) -> int | None:
+    """The line, counted from 1, on which a row stands, counted from 0: empty lines hold none."""
+    lines = [line for line, _ in _parts(text)]
+    return lines[row] if row < len(lines) else None
+
+
+def _parts(text: str) -> Iterator[tuple[int, list[str]]]:
+    """What stands on the lines that are not empty, with their numbers, counted from 1."""
+    for number, line in enumerate(text.splitlines(), start=1):
+        if parts := [part for part in _BETWEEN.split(line.strip()) if part]:
+            yield number, parts
 
 
 def text_from_rows(value: Any) -> str | None:

@@ -13,6 +13,7 @@ from web import snippets
 from web.form.draft import FORM, JSON, Draft
 from web.form.filling import kept_back
 from web.form.reading import REST, field_of, rows
+from web.form.rows import line_of_row, no_number_in
 from web.form.sections import HEAD, SECTIONS, Column, Kind, Section, Shape, column_of
 from web.form.spoken import spoken
 from web.form.text_place import line_of, place_of
@@ -168,8 +169,21 @@ def _complaints(draft: Draft, given: Sequence[Mapping[str, Any]]) -> tuple[Compl
         if draft.view == JSON:
             found.append(_placed(made, draft.text, item))
         else:
-            found.append(replace(made, where=spoken(field, draft.fields)))
+            found.append(replace(_by_line(made, draft.fields.get(field, ""), field), where=spoken(field, draft.fields)))
     return (*own, *found)
+
+
+def _by_line(made: Complaint, text: str, field: str) -> Complaint:
+    """A complaint about points in the words of their field, which holds lines and no list."""
+    if column_of(field).kind is not Kind.POINTS or text.lstrip()[:1] == "[":
+        return made
+    if (wrong := no_number_in(text)) is not None:
+        line, part = wrong
+        hint = "Write one point to a line: numbers with blanks, tabs, commas or semicolons between them."
+        return replace(made, message=f"Line {line}: “{part[:40]}” is no number.", hint=hint)
+    row = made.pointer.partition("/points/")[2].partition("/")[0]
+    at_line = line_of_row(text, int(row)) if row.isdigit() else None
+    return made if at_line is None else replace(made, message=f"Line {at_line}: {made.message}")
 
 
 def _placed(made: Complaint, text: str, given: Mapping[str, Any]) -> Complaint:

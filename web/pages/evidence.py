@@ -53,7 +53,10 @@ def diagnosis_of(result: Mapping[str, Any]) -> Diagnosis | None:
     given = result.get("diagnosis")
     if not given:
         return None
-    heading, advice = reason_heading(str(given.get("reason") or ""))
+    numbered = {
+        note for found in given.get("findings") or () if (note := str(found.get("note"))).startswith("conflict")
+    }
+    heading, advice = reason_heading(str(given.get("reason") or ""), max(len(numbered), 1))
     findings = (
         (
             str(finding.get("condition") or ""),

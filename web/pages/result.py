@@ -67,6 +67,7 @@ class ResultPage(Page):
     diagnosis: Diagnosis | None = told("Why there is no full result; None where there is one.")
     undetermined: Rows = told("Name, sentence and place of what is free that nothing determines.")
     main_figures: tuple[Figure, ...] = told("The curve itself.")
+    nearest: bool = told("Whether it is no solution, but the curve that violates the conditions least.")
     stretches: Rows = told("Quantity, begin, end and what it does there, from switch to switch.")
     fitted: FitView | None = told("The fit to observations; None where nothing was observed.")
     fitted_figures: tuple[Figure, ...] = told("The observations over the curve, and their residuals.")
@@ -134,6 +135,7 @@ def result_page(
         diagnosis=diagnosis_of(result),
         undetermined=undetermined_of(result),
         main_figures=tuple(figure for figure in drawn if figure.key.startswith(MAIN_FIGURES)),
+        nearest=bool(result.get("curve")) and not has_value,
         stretches=stretches_of(result),
         fitted=fit_view(result, run_id),
         fitted_figures=tuple(figure for figure in drawn if figure.key.startswith(FITTED_FIGURES)),
@@ -151,12 +153,12 @@ def result_page(
         },
         checks=tuple(check_of(check, result) for check in checks),
         checks_tally=tally(checks),
-        curve_error=display.number((result.get("curve") or {}).get("error"), 2) if result.get("curve") else "",
+        curve_error=display.number(error, 2) if (error := (result.get("curve") or {}).get("error")) is not None else "",
         notes=tuple(str(note) for note in result.get("notes") or ()),
         value_band=band_of(result),
         slopes=slopes_of(result),
         prices=prices_of(result),
-        reach=tuple(reach_of(line, result) for line in extremes(result)),
+        reach=tuple(reach_of(line, result) for line in extremes(result)) if has_value else (),
         branch=branch,
         sweep=sweep,
         reading=reading_view(result["reading"]) if result.get("reading") else None,

@@ -77,8 +77,16 @@ def _column(trajectory: Trajectory, wanted: str) -> Wanted:
     elif close := get_close_matches(wanted, known, n=1, cutoff=0.5):
         hint = f"Did you mean {close[0]}?"
     else:
-        hint = f"The columns are {', '.join((trajectory.independent, *trajectory.names))} and their derivatives (x')."
+        hint = f"The columns are {', '.join((trajectory.independent, *trajectory.names))}{_primed(trajectory)}."
     raise TableError(f"There is no column {wanted!r}.", hint, "unknown-column")
+
+
+def _primed(trajectory: Trajectory) -> str:
+    """What is said of derivatives behind the names of the columns."""
+    if not trajectory.names:
+        return ""
+    whose = "their derivatives" if len(trajectory.names) > 1 else "its derivatives"
+    return f", and {whose}, such as {trajectory.names[0]}'"
 
 
 def described(

@@ -84,7 +84,9 @@ def _inner_lobatto(degree: int) -> Array:
 
 def _check_rows(rows: int) -> None:
     if rows < 2:
-        raise TableError(f"{rows} rows cannot hold both ends.", "Ask for at least 2 rows.", "too-few-rows")
+        raise TableError(
+            f"{rows} row{'' if rows == 1 else 's'} cannot hold both ends.", "Ask for at least 2 rows.", "too-few-rows"
+        )
     if rows > MOST_ROWS:
         raise TableError(
             f"{rows:,} rows are more than the limit of {MOST_ROWS:,}.",

@@ -125,6 +125,9 @@ def _with_sigma(
     """Columns and rows with the standard deviations; raises TableError where there are none."""
     changes = read_changes(result)
     if not changes:
+        if result.get("value") is None:
+            hint = "Its curve is the one that violates the conditions least."
+            raise TableError("Nothing was solved in this run: there are no standard deviations.", hint, "no-tolerances")
         message = "It is not known what the tolerances of the constants do to the curve."
         raise TableError(message, "Give a constant a tolerance: 0.80 m +/- 0.01 m.", "no-tolerances")
     more, numbers = [columns[0]], [rows[:, 0]]

@@ -67,6 +67,9 @@ def test_the_smallest_conflicts_are_said_set_by_set():
     found.conflicts = sets
     told = diagnose(found)
     assert told.sentence.startswith("No curve satisfies all of 'a', 'b' and 'c'. Nor 'd'. Without any one of them")
+    assert "the others of a conflict can be met" in told.sentence
+    found.conflicts = sets[:1]
+    assert "Without any one of them the others can be met" in diagnose(found).sentence
     found.conflicts = sets[1:]
     assert diagnose(found).sentence == "No curve satisfies 'd'."
     found.conflicts = (tuple(Finding(str(k), f"/constraints/{k}", 1.0) for k in range(9)),)

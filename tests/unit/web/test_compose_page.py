@@ -33,6 +33,27 @@ def test_a_complaint_about_a_missing_member_leads_to_where_it_belongs():
     assert page.complaints[0].field == "functional.seek"
 
 
+def of_points(text, at=""):
+    """What is said in the form about points written like this; `at` is where the check found something."""
+    draft = draft_from_post({"view": "form", "observations.0.of": "y", "observations.0.points": text})
+    page = compose_page(draft, base_url=BASE, complaints=[complaint(f"/observations/0/points{at}")])
+    (shown,) = field(page, "observations.0.points").complaints
+    return shown.message
+
+
+def test_points_that_are_no_numbers_are_told_by_their_line():
+    """The field holds lines: that the document wants a list there is nobody's business."""
+    assert of_points("0 1\n\n1 high\n2 3") == "Line 3: “high” is no number."
+
+
+def test_a_point_with_too_many_numbers_is_told_by_its_line():
+    assert of_points("0 1\n\n1 2 3 4", "/1") == "Line 3: Something is wrong."
+
+
+def test_a_list_in_brackets_is_told_as_the_check_tells_it():
+    assert of_points("[[0, 1], [1]]", "/1") == "Something is wrong."
+
+
 def test_a_complaint_about_the_whole_document_is_listed_without_a_field():
     page = compose_page(draft_from_post({"view": "form"}), base_url=BASE, complaints=[complaint("")])
     assert [item.field for item in page.complaints] == [""]

@@ -14,6 +14,7 @@ from web.caution import CAUTION
 from web.pages.progress import progress_page
 from web.pages.result import result_page
 from web.render import render
+from web.tables import TableError, table
 from web.verdicts import reason_heading, verdict_sentence
 
 BASE = "http://bench.example:8000/"
@@ -91,6 +92,32 @@ def test_a_diagnosis_says_the_reason_first_and_lists_the_findings(infeasible):
     assert made.diagnosis.findings[0][:2] == ("integral(sqrt(1 + y'^2)) = 2.9", "0.127\N{NO-BREAK SPACE}m")
     assert made.diagnosis.findings[1][2] == "x = 3\N{NO-BREAK SPACE}m, y"
     assert made.preview is None and made.value == "" and not made.main_figures
+
+
+def test_the_curve_of_least_violation_is_called_what_it_is(hose, infeasible):
+    nearest = {**infeasible, "curve": {**hose["curve"], "error": None}}
+    made = page(nearest)
+    text = render(made)
+    assert '<h2 id="curve">The curve that violates the conditions least</h2>' in text
+    assert "<p>Relative error" not in text and "Limit report" not in text
+    assert "The curve that violates" not in render(page(hose))
+    with pytest.raises(TableError, match="Nothing was solved"):
+        table(nearest, sigma=True)
+
+
+@pytest.mark.parametrize(
+    ("notes", "advice"),
+    [
+        (("", ""), "Loosen or drop one of these conditions and solve again."),
+        (("conflict 1", "conflict 1"), "Loosen or drop one of these conditions and solve again."),
+        (("conflict 1", "conflict 2"), "Loosen or drop one condition of each conflict and solve again."),
+    ],
+)
+def test_every_conflict_needs_something_that_gives(infeasible, notes, advice):
+    findings = [{**finding, "note": note}
+                for finding, note in zip(infeasible["diagnosis"]["findings"], notes, strict=True)]  # fmt: skip
+    made = page({**infeasible, "diagnosis": {**infeasible["diagnosis"], "findings": findings}})
+    assert made.diagnosis.advice == advice
 
 
 def test_what_nothing_determines_is_said_beside_the_verdict(hose):

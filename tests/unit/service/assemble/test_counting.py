@@ -45,6 +45,14 @@ def test_without_a_free_function_each_initial_value_and_parameter_takes_one_cond
     assert all(condition in complaint.message for condition in endpoints)
 
 
+def test_the_equation_that_took_the_freedom_is_named():
+    """An equality of the user's among the constraints gives the whole course: its ends are given by it."""
+    with pytest.raises(Refused) as refusal:
+        shape(endpoints=["y(0) = 0", "y(3) = 1"], constraints=["0 <= y = 1"])
+    (complaint,) = refusal.value.complaints
+    assert complaint.message.endswith("“0 <= y = 1” gives the course of y.")
+
+
 @pytest.mark.parametrize(
     "endpoints",
     [
