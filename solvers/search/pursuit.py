@@ -157,11 +157,11 @@ def _next(path: Trajectory, mesh: Mesh, minimise_: Minimiser) -> tuple[Program, 
     usual: dict[str, Any] = {"ipopt.max_iter": FEW_ITERATIONS}
     gentle = usual | {"ipopt.mu_init": first}
     tries = [(warm, usual), (warm, gentle), (Start(warm.z), {})]
-    if first > NARROW * WARM["ipopt.mu_init"]:
+    if program.unlimited or first > NARROW * WARM["ipopt.mu_init"]:
         del tries[1]
     elif pursuit.gently:
         del tries[0]
-    if _close(pursuit):
+    if _close(pursuit) and not program.unlimited:  # else all barriers are the same: there is none
         tries.insert(0, (warm, NIMBLE))
     for start, options in tries:
         afresh = start is not warm

@@ -41,6 +41,13 @@ class Program(Placement):
         """Whether there are more equations than variables that can move."""
         return bool((self.row_lower == self.row_upper).sum() > (self.lower < self.upper).sum())
 
+    @property
+    def unlimited(self) -> bool:
+        """Whether there are equations only, and no bounds on what can move."""
+        free = self.lower < self.upper
+        bounds = np.concatenate([self.lower[free], self.upper[free]])
+        return not (np.isfinite(bounds).any() or (self.row_lower < self.row_upper).any())
+
 
 def transcribe(compiled: Compiled, mesh: Mesh, where: Layout, scales: Scales, row_sizes: RowSizes) -> Program:
     """Put a compiled problem on a mesh with its layout."""

@@ -242,3 +242,17 @@ def test_a_maximum_is_the_minimum_of_the_opposite():
     f = [program.numbers.value(z / program.scale) for program in (least, greatest)]
     assert f[0] == -f[1]
     assert least.value_scale == -greatest.value_scale > 0
+
+
+@pytest.mark.parametrize(
+    ("members", "unlimited"),
+    [
+        ({}, True),
+        ({"constraints": ["u <= 3"]}, False),
+        ({"constraints": ["x^2 + u^2 <= 3"]}, False),
+        ({"constraints": ["integral(u^2) <= 3"]}, False),
+        ({"constraints": ["integral(u^2) = 3"]}, True),  # an equation is no limit, nor is an end that is given
+    ],
+)
+def test_what_has_equations_only_is_unlimited(members, unlimited):
+    assert program_of(stated(endpoints=["x(0) = 0", "x(1) = 1"], **members)).unlimited is unlimited
