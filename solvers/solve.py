@@ -18,6 +18,7 @@ from solvers.forms.cut import cut_at_switches
 from solvers.forms.first_look import first_look
 from solvers.forms.gauge import Form, in_parametric_form
 from solvers.forms.gauge_arcs import in_parametric_form_by_arcs
+from solvers.forms.kinks_on_arcs import arcs_at_kinks
 from solvers.forms.rejoin import rejoin
 from solvers.forms.signs import one_signed
 from solvers.problem import Continuation, Problem
@@ -46,6 +47,7 @@ def solve(problem: Problem, watch: Watch | None = None, together: Together = IN_
 
 def _of_arcs(problem: Problem, watch: Watch | None, together: Together) -> Solution:
     """Arcs are solved beside each other, on one common variable."""
+    problem = arcs_at_kinks(problem)
     beside = side_by_side(problem)
 
     def hear(progress: Progress) -> bool:  # the common variable means nothing to a reader

@@ -18,7 +18,7 @@ from graphlib import TopologicalSorter
 from itertools import pairwise
 
 from solvers.formula.nodes import At, Call, Name, Node, Number, Product, Sum, children, walk, with_children
-from solvers.problem import Arc, Condition, Equation, Jump, Observation, Place, Problem, Unknown
+from solvers.problem import MIDDLE, Arc, Condition, Equation, Jump, Observation, Place, Problem, Unknown
 from solvers.transcription.limits import number
 from solvers.transcription.lowering import Lowered, lower, primed
 
@@ -147,7 +147,8 @@ class Copy:
         self.length = length_of(problem, piece.place)
         self.arc: Arc = problem.arcs[piece.arc]
         self._independent = problem.independent
-        self._start = problem.places[piece.place].tree
+        self._start, end = (place.tree for place in problem.places[piece.place : piece.place + 2])
+        self.middle = Product((Sum((self._start, end), (False, False)), Number(2.0, "2")), (False, True))
         self._abbreviations = {name for name, _ in self.arc.where}
         self._names = {unknown.name for unknown in self.arc.unknowns}
 
@@ -157,6 +158,8 @@ class Copy:
             return with_children(tree, tuple(self.tree(part) for part in children(tree)))
         if tree.name == self._independent:
             return self.here()
+        if tree.name == MIDDLE:
+            return self.middle
         if tree.name in self._names or tree.name in self._abbreviations:
             return self.quantity(tree.name, tree.order)
         return tree

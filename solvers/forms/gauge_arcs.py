@@ -38,7 +38,7 @@ from solvers.forms.gauge import (
 )
 from solvers.forms.homogeneous import Homogeneous, OtherGrowthError
 from solvers.formula.nodes import Name, Node, Number, Power, Product, Sum, children, with_children
-from solvers.problem import Condition, Equation, Parameter, Place, Problem, Seek, Unknown
+from solvers.problem import MIDDLE, Condition, Equation, Parameter, Place, Problem, Seek, Unknown
 
 SHARE = "path share"
 LEAST_SHARE = 1e-6
@@ -76,6 +76,8 @@ class Upright(Copy):
             return with_children(tree, tuple(self.moved(part) for part in children(tree)))
         if tree.name == self._independent:
             return Name(self.x, tree.order)
+        if tree.name == MIDDLE:
+            return self.middle
         if tree.name in self._names:
             return Name(self.quantity(tree.name, 0).name, tree.order)
         return self.quantity(tree.name, 0) if tree.name in self._abbreviations else tree

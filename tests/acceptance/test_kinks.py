@@ -4,6 +4,7 @@ Each is solved as if there were no kink: on few meshes, to many digits, with an 
 """
 
 import math
+from itertools import pairwise
 
 import pytest
 from scipy.optimize import brentq
@@ -88,6 +89,35 @@ def test_kinks_along_the_range_cost_nothing(members, value):
     assert len(found.meshes) <= 3
     assert not any("rounded" in note for note in found.notes)
     assert any("given along the range" in note for note in found.notes)
+
+
+def on_arcs(members, *junctions):
+    """The same in arcs that meet at some places between 0 and 2."""
+    ends = [0, *junctions, 2]
+    arcs = [{"name": f"arc{k}", "from": a, "to": b} for k, (a, b) in enumerate(pairwise(ends))]
+    return members | {"arcs": arcs}
+
+
+@pytest.mark.parametrize("case", ["two media", "with the largest of two", "a curve to follow", "over a step"])
+@pytest.mark.parametrize("junctions", [(1.5,), (0.7,), (0.4, 1.2)], ids=str)
+def test_kinks_on_arcs_cost_nothing_either(case, junctions):
+    members, value = CASES[case]
+    found = solve(stated(**on_arcs(members, *junctions)))
+    assert found.verdict in LEAST, [check for check in found.checks if check.status is Status.FAILED]
+    assert abs(found.value - value) <= found.value_error <= 1e-7 * max(abs(value), 0.1)
+    assert [arc.name for arc in found.arcs] == [f"arc{k}" for k in range(len(junctions) + 1)]
+
+
+def test_what_jumps_at_a_junction_jumps_there_behind_a_kink_too():
+    """y' = u + 1 + sign(x - 0.3) on each of two arcs, y drops by 1 between them: u makes up for what is missing."""
+    members = over(
+        0, 2, "u^2", "y(0) = 0", "y(1+) = y(1-) - 1", "y(2) = 3", unknowns={"y": {}, "u": {}},
+        dynamics=["y' = u + 1 + sign(x - 0.3)"],
+    )  # fmt: skip
+    found = solve(stated(**on_arcs(members, 1)))
+    u = (3 + 1 - 2 * 1.7) / 2
+    assert found.verdict in LEAST
+    assert abs(found.value - 2 * u**2) <= found.value_error <= 1e-6
 
 
 def to_a_free_end(integrand, within, *endpoints, **members):
