@@ -207,3 +207,13 @@ def test_a_kink_that_moves_with_a_swept_constant():
         (d,) = point.at
         value = 1 / (d / 1 + (2 - d) / 2)  # y' is 1/(the weight) of a constant
         assert abs(point.value - value) <= point.value_error
+
+
+@pytest.mark.parametrize("unit, size", [("nm", 1e-9), ("um", 1e-6), ("km", 1e3)])
+def test_kinks_along_the_range_in_any_unit(unit, size):
+    lengths = {"independent": {"name": "x", "unit": unit, "from": 0, "to": 2}, "unknowns": {"y": {"unit": unit}}}
+    place = {"constants": {"d": f"0.7 {unit}"}, "constraints": ["y >= max(-d, abs(x - d) - 3*d)"]}
+    members = over(0, 2, "(1.25 + 0.25*sign(x - d))*sqrt(1 + y'^2)", *RAY) | lengths | place
+    found = solve(stated(**members))
+    assert found.verdict in LEAST
+    assert abs(found.value - size * through_layers(TWO, 1)) <= found.value_error <= 1e-7 * size
