@@ -5,10 +5,13 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import replace
 
-from solvers.formula.nodes import SIDE, Call, Name, Node
+from solvers.formula.nodes import SIDE, Call, Name, Node, Number
 from solvers.formula.substitute import substitute
 from solvers.problem import Parameter, Problem
 from solvers.transcription.limits import number
+
+BEFORE, BEHIND = Number(-1.0, "-1"), Number(2.0, "2")
+"""Where in the parameter, from 0 to 1, kinks lie that are outside; what is proved of all ranges must not know it."""
 
 
 def reformulated(problem: Problem, change: Callable[[Node], Node]) -> Problem:
@@ -42,7 +45,8 @@ def at_free_places(problem: Problem) -> Problem:
     def moved(node: Node) -> Node | None:
         if isinstance(node, Call) and node.function == SIDE:
             middle, place = node.arguments
-            return Call(SIDE, (middle, names[place]))
+            outside = BEFORE if number(place, constants) <= first else BEHIND
+            return Call(SIDE, (middle, names.get(place, outside)))
         return None
 
     changed = reformulated(problem, lambda tree: substitute(tree, moved))

@@ -151,8 +151,7 @@ class Kinks:
         for t, jump in zip(kinks, np.diff(signs), strict=True):
             if jump:
                 place = self._place(t, tree, names)
-                inside = self._first < t < self._last
-                side = Call(SIDE, (Name(MIDDLE), place)) if inside else numeral(1.0 if t <= self._first else -1.0)
+                side = Call(SIDE, (Name(MIDDLE), place))
                 level = plus(level, times(numeral(float(jump) / 2), side))
         return level
 

@@ -161,6 +161,13 @@ def test_a_free_end_finds_its_side_of_every_kink(members, value):
     assert all(price.pointer and "kink" not in price.label for price in found.prices)
 
 
+def test_what_is_proved_before_a_kink_is_not_claimed_of_what_lies_behind():
+    """6 per unit up to 1, and -4 from there: the shortest range is a minimum, but not the least of all."""
+    found = solve(stated(**to_a_free_end("y'^2 + 1 - 5*sign(x - 1)", [0.1, 10], "y(0) = 0")))
+    assert (found.value, found.verdict) in [(pytest.approx(0.6), Verdict.LOCAL_MINIMUM),
+                                            (pytest.approx(-30), Verdict.LOCAL_MINIMUM)]  # fmt: skip
+
+
 def test_kinks_of_unknowns_with_a_free_end_are_none_of_the_range():
     """y'^2 + |y'| with y from 0 to 1 costs 1 + 1/T: T is as long as it may be."""
     found = solve(stated(**to_a_free_end("y'^2 + abs(y')", [0.5, 4], "y(0) = 0", "y(T) = 1")))
