@@ -22,6 +22,7 @@ from solvers.curve import Curve
 from solvers.deadline import in_seconds
 from solvers.diagnosis import diagnose, with_feasibility
 from solvers.forms.choice import Found
+from solvers.forms.first_look import behind_guess
 from solvers.forms.gauge import Gauged
 from solvers.forms.graph import as_graph, checks_on_graph, prices_of_original, steps_of_original, uprights
 from solvers.forms.slack import SLACK
@@ -118,6 +119,8 @@ def with_evidence(
     if verdict in PROVED and (gap := lower_bound.gap(made)) is not None:  # the bound says it better than the meshes
         shown = gap * pursuit.value_size + FLOOR * abs(path.program.value_scale)
         value_error, diagnosis = min(value_error, shown + rounded_off), None
+    if verdict is Verdict.BEST_FOUND and behind_guess(problem, value if gauged is None else gauged.value(value)):
+        verdict = Verdict.NOT_VERIFIED
     shape = multipliers = Curve(path.breaks, {})
     if drawn or gauged is not None:
         shape = curve(path)

@@ -82,12 +82,12 @@ class Turning:
 def linear(tree: Node, problem: Problem) -> bool:
     """Whether a formula is proved to be linear in the highest derivatives of all unknowns together, and without kinks
     in them."""
-    return _linear(_written_out(tree, problem), _slopes(problem), kinks=False)
+    return _linear(written_out(tree, problem), _slopes(problem), kinks=False)
 
 
 def linear_by_parts(tree: Node, problem: Problem) -> bool:
     """The same, but for kinks of abs, max and min: linear between them."""
-    return _linear(_written_out(tree, problem), _slopes(problem), kinks=True)
+    return _linear(written_out(tree, problem), _slopes(problem), kinks=True)
 
 
 def reduced(problem: Problem) -> Reduced | Turning | None:
@@ -95,7 +95,7 @@ def reduced(problem: Problem) -> Reduced | Turning | None:
     if problem.integrand is None or not _pure(problem):
         return None
     slopes = _slopes(problem)
-    integrand = _written_out(problem.integrand, problem)
+    integrand = written_out(problem.integrand, problem)
     moving = [Name(unknown.name) for unknown in problem.unknowns if unknown.order]
     if not _smooth(integrand) or not _linear(integrand, slopes, kinks=False) or not _convex_sections(problem):
         return None
@@ -136,7 +136,7 @@ def _slopes(problem: Problem) -> list[Name]:
     return [Name(unknown.name, unknown.order) for unknown in problem.unknowns if unknown.order]
 
 
-def _written_out(tree: Node, problem: Problem) -> Node:
+def written_out(tree: Node, problem: Problem) -> Node:
     """A formula with its abbreviations written out; without places in any text."""
     known: dict[str, Node] = {}
 
@@ -195,7 +195,7 @@ def _convex_sections(problem: Problem) -> bool:
     for condition in problem.constraints:
         if simple_bound(condition) is not None:
             continue
-        body = _written_out(condition.body, problem)
+        body = written_out(condition.body, problem)
         names = [Name(unknown.name) for unknown in problem.unknowns]
         if condition.equality or not _smooth(body) or not _linear(body, names, kinks=False):
             return False

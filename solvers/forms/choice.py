@@ -18,6 +18,7 @@ from solvers.forms.kinks_by_ends import by_ends
 from solvers.forms.ridge import off_ridge
 from solvers.forms.signs import better_below, one_signed, positive, positive_along, where_defined
 from solvers.forms.slack import with_slacks
+from solvers.forms.zigzag import runs_away
 from solvers.minimise.ipopt import FLOOR
 from solvers.problem import Problem, Seek
 from solvers.search.at_bound import at_bound
@@ -67,11 +68,14 @@ def _solve(stated: Problem, problem: Problem, watch: Watch | None, deadline: Dea
         pursuit = solve_without_slopes(alike, watch, deadline)
         return Found(pursuit, None, reduced=alike if isinstance(alike, Reduced) else None)
     look = cache(lambda: first_look(problem))
+    signed = one_signed(stated)
+    if not signed and (away := runs_away(problem, lambda: look().curve, watch, deadline)) is not None:
+        return Found(away, None)
     for squared in (True, False):
         gauged = form(problem, lambda: look().sizes, squared)
         if gauged is None or (squared and not gauged.squared):
             continue
-        doubtful = squared and not one_signed(stated)
+        doubtful = squared and not signed
         if doubtful and not positive(better_below(problem) * look().integrand):
             continue
         room = deadline.within(DOUBTFUL * deadline.left) if doubtful else deadline

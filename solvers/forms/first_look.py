@@ -10,8 +10,8 @@ from numpy.typing import NDArray
 
 from solvers.forms.gauge import SPEED, Gauged
 from solvers.forms.steepness import steep_slopes
-from solvers.problem import Problem
-from solvers.search.attempt import first_mesh
+from solvers.problem import Problem, Seek
+from solvers.search.attempt import FIRST_INTERVALS, first_mesh, make_program
 from solvers.starts.guess import first_guess
 from solvers.transcription.evaluation import point_outputs
 from solvers.transcription.functions import compile_problem
@@ -22,6 +22,11 @@ from solvers.transcription.scaling import find_scales
 
 Array = NDArray[np.float64]
 
+KEPT = 1e-9
+"""Violations of a guess up to this are rounding."""
+CLEARLY = 1e-2
+"""Relative difference of values that no coarse mesh makes."""
+FINER = 4
 ALIKE = 30.0
 """Factor within which sizes of the range and of an unknown count as the same."""
 
@@ -60,6 +65,26 @@ def first_look(problem: Problem) -> FirstLook:
             sizes[name] = span * steep[name] if name in steep else span if alike else size
             curve[name] = np.concatenate([z[where.nodes[:, k]], z[where.inner[:, k]]])[order]
     return FirstLook(sizes, point_outputs(compiled, where, z)[:, -1], curve)
+
+
+def behind_guess(problem: Problem, value: float) -> bool:
+    """Whether the first guess keeps all conditions and clearly has a better value (SI) already.
+
+    Of dynamics a guess knows nothing: then it is none of the curves that are compared.
+    """
+    if problem.dynamics:
+        return False
+    compiled, sign = compile_problem(lower(problem)), -1.0 if problem.seek is Seek.MAXIMUM else 1.0
+    for count in (FIRST_INTERVALS, FINER * FIRST_INTERVALS):  # where its own integral is not clear, nothing is
+        mesh = first_mesh(len(problem.places) - 1, count)
+        where = layout(compiled, mesh)
+        guess = first_guess(compiled, mesh, where)
+        program = make_program(compiled, mesh, where, guess.z)
+        z = guess.z / program.scale
+        kept = guess.violation <= KEPT and ((z >= program.lower - KEPT) & (z <= program.upper + KEPT)).all()
+        if not (kept and sign * (value - guess.value) > CLEARLY * abs(guess.value)):
+            return False
+    return True
 
 
 def at_constant_speed(gauged: Gauged, look: FirstLook) -> Gauged:

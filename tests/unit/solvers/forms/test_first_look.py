@@ -5,7 +5,7 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
-from solvers.forms.first_look import at_constant_speed, first_look
+from solvers.forms.first_look import at_constant_speed, behind_guess, first_look
 from solvers.forms.gauge import SPEED, in_parametric_form
 from solvers.problem import Variation
 from solvers.solve import solve
@@ -60,3 +60,19 @@ def test_what_is_no_graph_begins_as_it_is():
     gauged = in_parametric_form(way, lambda: look.sizes, squared=True)
     assert not gauged.graph
     assert at_constant_speed(gauged, look) is gauged
+
+
+@pytest.mark.parametrize(("value", "seek", "behind"), [(1.5, "minimum", True), (1.4, "minimum", False),
+                                                       (1.3, "maximum", True), (1.5, "maximum", False)])  # fmt: skip
+def test_a_value_is_compared_with_that_of_the_first_guess(value, seek, behind):
+    """From (0, 0) to (1, 1) the guess is the line of length sqrt(2)."""
+    problem = shape(independent={"name": "x", "from": 0, "to": 1}, endpoints=["y(0) = 0", "y(1) = 1"],
+                    functional={"seek": seek, "integrand": "sqrt(1 + y'^2)"})  # fmt: skip
+    assert behind_guess(problem, value) is behind
+
+
+def test_a_guess_that_breaks_conditions_is_no_measure():
+    """Near y = 0 the condition is broken: no line or bend from there is compared."""
+    problem = shape(independent={"name": "x", "from": 0, "to": 1}, functional={"integrand": "sqrt(1 + y'^2)"},
+                    constraints=["y^2 + x >= 3/2"], endpoints=[])  # fmt: skip
+    assert not behind_guess(problem, 100.0)
