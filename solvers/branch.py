@@ -296,7 +296,7 @@ def _finer(path: Trajectory) -> Trajectory:
     compiled, mesh = path.program.compiled, refinement.finer(refinement.finer(path.program.mesh))
     where = layout(compiled, mesh)
     carried = carry(path, mesh, where)
-    program = make_program(compiled, mesh, where, carried.z, path.program.scales)
+    program = make_program(compiled, mesh, where, carried.z, path.program)
     start = carried.onto(program)
     rows = np.zeros(program.rows.count) if start.multipliers is None else start.multipliers
     equal = program.row_lower == program.row_upper

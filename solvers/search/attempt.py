@@ -15,7 +15,7 @@ from solvers.transcription.layout import Layout
 from solvers.transcription.mesh import Mesh, interval, uniform
 from solvers.transcription.natural import at_natural_sizes
 from solvers.transcription.program import Program, transcribe
-from solvers.transcription.scaling import Scales, find_row_sizes, find_scales
+from solvers.transcription.scaling import find_row_sizes, find_scales
 
 Array = NDArray[np.float64]
 
@@ -37,12 +37,13 @@ def first_mesh(stretches: int, count: int = FIRST_INTERVALS) -> Mesh:
     ))  # fmt: skip
 
 
-def make_program(compiled: Compiled, mesh: Mesh, where: Layout, z: Array, before: Scales | None = None) -> Program:
-    """A program whose scales come from values (SI) on its mesh, and do not fall far below those of the mesh before."""
+def make_program(compiled: Compiled, mesh: Mesh, where: Layout, z: Array, before: Program | None = None) -> Program:
+    """A program whose scales come from values (SI) on its mesh, and do not fall far below those of the one before."""
     if before is None:
         z = at_natural_sizes(compiled, mesh, where, z)
-    scales = find_scales(compiled, where, z, before)
-    return transcribe(compiled, mesh, where, scales, find_row_sizes(compiled, where, scales, z))
+    scales = find_scales(compiled, where, z, None if before is None else before.scales)
+    rows = find_row_sizes(compiled, where, scales, z, 0.0 if before is None else abs(before.value_scale))
+    return transcribe(compiled, mesh, where, scales, rows)
 
 
 def loose(compiled: Compiled) -> bool:

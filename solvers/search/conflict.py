@@ -70,7 +70,7 @@ def least_violation_of(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Program,
         mesh = first_mesh(stretches, FIRST_INTERVALS * 2**doubling)
         where = layout(compiled, mesh)
         z = carry(curve_of_least_violation(program, least), mesh, where).z
-        finer = make_program(compiled, mesh, where, z, program.scales)
+        finer = make_program(compiled, mesh, where, z, program)
         again = minimise_.relax(finer, z / finer.scale)
         if again.minimum.outcome not in SOLVED:
             break

@@ -148,7 +148,7 @@ def _next(path: Trajectory, mesh: Mesh, minimise_: Minimiser) -> tuple[Program, 
     compiled = path.program.compiled
     where: Layout = layout(compiled, mesh)
     carried = carry(path, mesh, where)
-    program = make_program(compiled, mesh, where, carried.z, path.program.scales)
+    program = make_program(compiled, mesh, where, carried.z, path.program)
     warm = carried.onto(program)
     near = minimise_.nearby(program, warm)
     if near is not None:

@@ -76,7 +76,7 @@ def _integrated_anew(program: Program, minimum: Minimum) -> float | None:
     mesh = refinement.finer(program.mesh)
     where = layout(program.compiled, mesh)
     carried = carry(path, mesh, where)
-    finer = make_program(program.compiled, mesh, where, carried.z, program.scales)
+    finer = make_program(program.compiled, mesh, where, carried.z, program)
     z = carried.z / finer.scale
     g = finer.numbers.constraints(z)
     broken = np.maximum(finer.row_lower - g, g - finer.row_upper).max(initial=0.0)

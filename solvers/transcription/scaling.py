@@ -145,8 +145,12 @@ EXACT = 1e-4
 """The least share of the squares that counts as the size of their sum: where a model fits exactly it would vanish."""
 
 
-def find_row_sizes(compiled: Compiled, where: Layout, scales: Scales, z: Array) -> RowSizes:
-    """Sizes of the outputs from their slopes at values (SI) on a mesh: how much each changes over the scales."""
+def find_row_sizes(compiled: Compiled, where: Layout, scales: Scales, z: Array, before: float = 0.0) -> RowSizes:
+    """Sizes of the outputs from their slopes at values (SI) on a mesh: how much each changes over the scales.
+
+    `before` is the size of the functional on the mesh before, if any: where all of the integrand is least at zero, as a
+    square is, its slopes vanish along the best curve.
+    """
     point, end = compiled.point, compiled.end
 
     def row_sums(z: Array, controls: Array) -> Array:
@@ -165,6 +169,8 @@ def find_row_sizes(compiled: Compiled, where: Layout, scales: Scales, z: Array) 
     pointwise = slopes[:, n : n + point.constraints]
     value = float(where.measures @ integrand) + float(end_slopes[-1])
     value = max(value, EXACT * _squares(compiled))
+    if before > 0:
+        value = float(_kept(np.array(value), np.array(before)))
     return RowSizes(
         pointwise=_positive(np.median(pointwise, axis=0)) if point.constraints else np.zeros(0),
         conditions=_positive(end_slopes[:-1]),

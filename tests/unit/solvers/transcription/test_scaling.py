@@ -7,7 +7,7 @@ from solvers.solve import solve
 from solvers.transcription.layout import layout
 from solvers.transcription.mesh import uniform
 from solvers.transcription.scaling import FAINT, find_row_sizes, find_scales
-from tests.unit.solvers.problems import compiled, solved_on, start_of, stated
+from tests.unit.solvers.problems import compiled, shape, solved_on, start_of, stated
 
 MESH = uniform(1, 6, 6)
 
@@ -222,3 +222,19 @@ def test_sizes_are_positive_and_finite_whatever_the_values():
     for values in (scales.states, scales.controls, scales.places, sizes.value):
         assert np.all(np.isfinite(values))
         assert np.all(np.asarray(values) > 0)
+
+
+def test_a_functional_that_vanishes_keeps_a_size():
+    """Along y = 1 all slopes of (y^2 - 1)^2 + y'^2 are zero: only the mesh before tells how large the functional is."""
+    problem = shape(functional={"integrand": "(y^2 - 1)^2 + y'^2"})
+    functions = compiled(problem)
+    where = layout(functions, MESH)
+    z = np.zeros(where.size)
+    z[where.places], z[where.nodes], z[where.inner] = [0, 3], 1 + 1e-9, 1 + 1e-9
+    scales = find_scales(functions, where, z)
+    assert find_row_sizes(functions, where, scales, z).value < 1e-6
+    assert find_row_sizes(functions, where, scales, z, 2.0).value == pytest.approx(2e-3)
+    z[where.nodes], z[where.inner] = 3, 3
+    alone = find_row_sizes(functions, where, scales, z).value
+    assert alone > 2
+    assert find_row_sizes(functions, where, scales, z, 2.0).value == alone
