@@ -6,6 +6,8 @@ of their difference over the whole range, in which an unknown counts relative to
 
 The starts are made one after the other or beside each other (`together`): what they lead to is the same, as none knows
 of the others and they are compared in their order.
+
+What does not satisfy the conditions of first order is no extremal: starts that end there are only counted.
 """
 
 from __future__ import annotations
@@ -36,6 +38,8 @@ NEAR_ZERO = 1e-3
 SOUND = frozenset({Verdict.GLOBAL_MINIMUM, Verdict.LOCAL_MINIMUM, Verdict.GLOBAL_MAXIMUM, Verdict.LOCAL_MAXIMUM,
                    Verdict.STATIONARY})  # fmt: skip
 REFUTED = frozenset({Verdict.NOT_A_MINIMUM, Verdict.NOT_A_MAXIMUM})
+FEASIBLE = frozenset({Verdict.BEST_FOUND, Verdict.NO_OPTIMUM})
+"""Verdicts on curves that need be no extremals, but have the value that they are said to have."""
 
 LOWERED = {Verdict.GLOBAL_MINIMUM: Verdict.LOCAL_MINIMUM, Verdict.GLOBAL_MAXIMUM: Verdict.LOCAL_MAXIMUM}
 """What remains of a verdict that a better curve contradicts."""
@@ -104,14 +108,17 @@ def _compared(
     first = made[0][1]
     if not curves:
         return replace(first, times={**first.times, "starts": seconds})
+    merit = _Merit(problem, len(made) + len(broken), tuple(broken))
+    standing = [(label, found) for label, found in curves if merit.stands(found)]
+    listed = standing or [min(curves, key=lambda one: merit.order(one[1]))]
+    merit = replace(merit, lost=len(made) - len(listed))
     groups: list[list[tuple[str, Solution]]] = []
-    for label, found in curves:
+    for label, found in listed:
         group = next((g for g in groups if same(g[0][1], found, sizes, problem.options.tolerance)), None)
         if group is None:
             groups.append([(label, found)])
         else:
             group.append((label, found))
-    merit = _Merit(problem, len(made) + len(broken), len(made) - len(curves), tuple(broken))
     extremals = [Extremal(min((s for _, s in g), key=merit.rank), tuple(label for label, _ in g)) for g in groups]
     extremals.sort(key=lambda extremal: merit.order(extremal.solution))
     told = [merit.told(extremal, extremals) for extremal in extremals]
@@ -125,8 +132,8 @@ class _Merit:
 
     problem: Problem
     starts: int  # those that were tried
-    lost: int  # those of them that led nowhere
     broken: tuple[str, ...]  # those of them that ended by an error, with the reason
+    lost: int = 0  # those of them that led nowhere
 
     @property
     def sign(self) -> float:
@@ -138,7 +145,11 @@ class _Merit:
             return 0
         if solution.verdict in REFUTED:
             return 1
-        return 2 if solution.verdict is Verdict.BEST_FOUND else 3
+        return 2 if solution.verdict in FEASIBLE else 3
+
+    def stands(self, solution: Solution) -> bool:
+        """Whether a curve is told: extremals are, and where a value is sought also what merely reaches one."""
+        return self.rank(solution) < (2 if self.problem.seek is Seek.STATIONARY else 3)
 
     def order(self, solution: Solution) -> tuple[int, float]:
         """The sorting key, best first; among points that are only stationary, the earlier start first."""
@@ -166,14 +177,13 @@ class _Merit:
             sentence += f" {len(self.broken)} ended by an error ({'; '.join(self.broken[:3])})."
         if self.problem.options.starts > starts:
             sentence += f" {self.problem.options.starts - starts} of those asked for were not tried."
-        feasible = [o for o in others if self.rank(o.solution) < 3]
         if self.problem.seek is Seek.STATIONARY or starts == 1:
             return Check(NAME, Status.NOT_APPLICABLE, sentence)
         own = extremal.solution
         size = max(abs(own.value or 0.0), 1e-300)
         threshold = self.problem.options.tolerance
         figure = 0.0
-        for other in (o.solution for o in feasible):
+        for other in (o.solution for o in others if self.rank(o.solution) < 3):
             better = self.sign * ((own.value or 0.0) - (other.value or 0.0))
             better -= (own.value_error or 0.0) + (other.value_error or 0.0)
             figure = max(figure, better / size)

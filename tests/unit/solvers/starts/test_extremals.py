@@ -145,8 +145,22 @@ def test_a_better_curve_takes_back_what_convexity_claims():
 def test_a_value_that_does_not_stand_is_no_rival():
     solution = from_list(line(1.0, 2.0), line(2.0, 1.0, Verdict.NOT_VERIFIED), Solution(Verdict.INFEASIBLE))
     assert solution.value == 2.0
-    assert [e.solution.value for e in solution.extremals] == [2.0, 1.0]
+    assert [e.solution.value for e in solution.extremals] == [2.0]
     assert other_starts(solution).status is Status.PASSED
+    assert "2 led nowhere" in other_starts(solution).sentence
+
+
+def test_a_better_value_that_is_only_approached_is_told():
+    solution = from_list(line(1.0, 2.0, Verdict.GLOBAL_MINIMUM), line(2.0, 1.0, Verdict.NO_OPTIMUM))
+    assert [e.solution.value for e in solution.extremals] == [2.0, 1.0]
+    assert solution.verdict is Verdict.LOCAL_MINIMUM
+
+
+def test_where_no_start_leads_to_an_extremal_the_best_curve_is_told():
+    found = line(1.0, 2.0, Verdict.NOT_VERIFIED), line(2.0, 1.0, Verdict.NOT_VERIFIED)
+    solution = from_list(*found)
+    assert solution.verdict is Verdict.NOT_VERIFIED
+    assert [e.solution.value for e in solution.extremals] == [1.0]
     assert "1 led nowhere" in other_starts(solution).sentence
 
 
