@@ -27,6 +27,7 @@ from solvers.search.pursuit import go_on
 from solvers.search.record import End, Pursuit
 from solvers.search.widths import with_widths
 from solvers.solution import Progress, Watch
+from solvers.transcription.lowering import simple_bound
 
 LOST = (End.FAILED, End.UNDEFINED)
 """Ends from which another first guess may help."""
@@ -92,7 +93,8 @@ def _solve(stated: Problem, problem: Problem, watch: Watch | None, deadline: Dea
         if doubtful and pursuit.solved and pursuit.end is End.TIME:
             pursuit = go_on(pursuit, hear, deadline)
         if (pursuit.solved and pursuit.end is not End.TORN) or pursuit.end in (End.STOPPED, End.TIME):
-            return Found(pursuit, gauged)
+            cornered = _with_limited_slope(problem, watch, deadline) if gauged.graph and pursuit.solved else None
+            return Found(pursuit, gauged) if cornered is None else Found(cornered, None)
     pursuit = solve_as_given(with_slacks(with_widths(problem)), watch, deadline)
     return Found(off_ridge(pursuit, watch, deadline) or with_corner(pursuit, watch, deadline) or pursuit, None)
 
@@ -107,6 +109,16 @@ def _in_original_terms(gauged: Gauged, watch: Watch | None) -> Watch | None:
         return watch(replace(progress, value=value, breaks=None if gauged.graph else progress.breaks))
 
     return hear
+
+
+def _with_limited_slope(problem: Problem, watch: Watch | None, deadline: Deadline) -> Pursuit | None:
+    """A curve with a corner, where the slope is limited to both sides: it may jump from one limit to the other."""
+    limits = [
+        condition for condition in problem.constraints if simple_bound(condition) == (problem.unknowns[0].name, 1)
+    ]
+    if not any(limit.lower for limit in limits) or not any(limit.upper for limit in limits):
+        return None
+    return with_corner(solve_as_given(with_slacks(with_widths(problem)), watch, deadline), watch, deadline)
 
 
 def rightly_squared(gauged: Gauged, pursuit: Pursuit, doubtful: bool) -> bool:

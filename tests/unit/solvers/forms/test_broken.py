@@ -97,3 +97,19 @@ def test_the_edge_over_a_place_lies_below_all_points():
     x = np.linspace(-3.0, 3.0, 4001)
     left, right = _edge_over(x, (x**2 - 1) ** 2 + 0.3 * x, 0.2)
     assert (left, right) == pytest.approx((-1.0, 1.0), abs=2e-3)  # the tilt is the slope of the edge
+
+
+def test_between_limits_of_the_slope_the_longest_curve_is_a_tent():
+    """Closed form: no curve with |y'| <= 1 is longer than sqrt(2) over a range of 1, and one of slopes 1 and -1 is."""
+    members = {
+        "independent": {"name": "x", "from": 0, "to": 1},
+        "functional": {"seek": "maximum", "integrand": "sqrt(1 + y'^2)"},
+        "endpoints": ["y(0) = 0", "y(1) = 0"],
+        "constraints": ["-1 <= y' <= 1"],
+    }
+    found = solve(shape(**members))
+    assert found.verdict in (Verdict.LOCAL_MAXIMUM, Verdict.GLOBAL_MAXIMUM)
+    assert abs(found.value - np.sqrt(2)) <= found.value_error < 1e-7
+    np.testing.assert_allclose(np.abs(found.curve.evaluate("y'", np.linspace(0.01, 0.99, 50))), 1.0, atol=1e-6)
+    shortest = solve(shape(**members | {"functional": {"integrand": "sqrt(1 + y'^2)"}}))
+    assert shortest.value == pytest.approx(1.0, rel=1e-8)
