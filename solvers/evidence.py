@@ -85,7 +85,7 @@ def with_evidence(
     solved_at = time.perf_counter()
     if gauged is not None and pursuit.solved:
         pursuit = _with_uprights(pursuit, gauged)
-    if not brief and pursuit.end in (End.CONVERGED, End.SETTLED) and problem.seek is not Seek.STATIONARY:
+    if pursuit.end in (End.CONVERGED, End.SETTLED) and problem.seek is not Seek.STATIONARY:
         findings = escapes(pursuit, in_seconds(problem.options.time_limit))
         pursuit = replace(pursuit, end=End.AWAY, findings=findings) if findings else pursuit
     diagnosis = diagnose(pursuit)

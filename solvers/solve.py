@@ -20,6 +20,7 @@ from solvers.forms.gauge import Form, in_parametric_form
 from solvers.forms.gauge_arcs import in_parametric_form_by_arcs
 from solvers.forms.kinks_on_arcs import arcs_at_kinks
 from solvers.forms.rejoin import rejoin
+from solvers.forms.saddle import left_behind, off_saddle, on_saddle
 from solvers.forms.signs import one_signed
 from solvers.problem import Continuation, Problem
 from solvers.search.holding import held_rightly
@@ -33,6 +34,9 @@ from solvers.starts.together import IN_TURN, Together
 from solvers.sweep.points import sweep
 from solvers.sweep.repair import without_contacts
 from solvers.sweep.tools import Tools
+
+SADDLES = 4
+"""How many saddles are left one after the other."""
 
 
 def solve(problem: Problem, watch: Watch | None = None, together: Together = IN_TURN) -> Solution:
@@ -100,8 +104,7 @@ def _from_starts(
     else:
         found = solve_in_best_form(problem, watch, deadline, form)
         found = replace(found, work=time.process_time() - idle)
-        name_conflicts(found.pursuit, watch, deadline)
-        solution = with_evidence(problem, found, began)
+        found, solution = _told(problem, found, watch, deadline, began)
     if problem.sweeps and found is not None:
         solution = _with_sweep(solution, problem, found, watch, deadline, form)
     if problem.continuation is not None and found is not None:
@@ -115,6 +118,21 @@ def _solve_once(problem: Problem, watch: Watch | None, form: Form) -> Solution:
     found = solve_in_best_form(problem, watch, deadline, form)
     name_conflicts(found.pursuit, watch, deadline)
     return with_evidence(problem, found, began)
+
+
+def _told(
+    problem: Problem, found: Found, watch: Watch | None, deadline: Deadline, began: float
+) -> tuple[Found, Solution]:
+    """What was found with its evidence; where that shows a saddle, what is found beside it."""
+    name_conflicts(found.pursuit, watch, deadline)
+    solution, left = with_evidence(problem, found, began), ""
+    for _ in range(SADDLES):
+        beside = off_saddle(problem, found, watch, deadline) if on_saddle(solution) else None
+        if beside is None:
+            break
+        left = left or left_behind(problem, solution)
+        found, solution = beside, with_evidence(problem, beside, began)
+    return found, replace(solution, notes=(*solution.notes, left)) if left else solution
 
 
 def _with_branch(
@@ -154,6 +172,7 @@ def _with_sweep(
         fits=lambda other, at: (
             at.gauged is None or not at.gauged.squared or rightly_squared(at.gauged, at.pursuit, not one_signed(other))
         ),
+        off_saddle=lambda other, at, told, room: off_saddle(other, at, None, room) if on_saddle(told) else None,
         form=form,
     )
     points = sweep(problem, found, tools, watch, deadline)

@@ -32,6 +32,7 @@ from solvers.deadline import FOREVER, Deadline
 from solvers.problem import Seek
 from solvers.solution import Check, Status
 
+Array = NDArray[np.float64]
 Flags = NDArray[np.bool_]
 
 NAME = "conjugate points"
@@ -55,6 +56,23 @@ def check(sampler: Sampler, deadline: Deadline = FOREVER, curve_error: float = 0
         return _decided(sampler, deadline, max(MARGIN, NOTICEABLE * curve_error))
     except TimeoutError:
         return Check(NAME, Status.NOT_APPLICABLE, "The second variation could not be decided in the time there was.")
+
+
+def falling(sampler: Sampler, curve_error: float = 0.0, deadline: Deadline = FOREVER) -> Array | None:
+    """The direction (in all variables, scaled) in which the second variation falls most; None where none is known."""
+    from solvers.checks import inertia
+
+    second, margin = second_order(sampler), max(MARGIN, NOTICEABLE * curve_error)
+    if sampler.path.program.layout.size > LARGEST or not second.hessian.finite:
+        return None
+    free, rows = ~(second.fixed | second.resting), second.equalities | second.at_limit
+    try:
+        directions = inertia.negative_directions(second, free, rows, margin, deadline)
+    except TimeoutError:
+        return None
+    if directions is None or not directions.shape[1]:
+        return None
+    return np.asarray(directions[:, np.argmin(inertia.quotients(second, directions))])
 
 
 def _decided(sampler: Sampler, deadline: Deadline, margin: float) -> Check:

@@ -6,6 +6,7 @@ from itertools import islice
 from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from solvers.minimise.ipopt import LEAST_SQUARES_MULTIPLIERS, Minimum, Outcome, Start
 from solvers.minimise.undefined import undefined_places
@@ -21,7 +22,9 @@ from solvers.transcription.functions import linear_controls
 from solvers.transcription.layout import layout
 from solvers.transcription.mesh import Mesh
 from solvers.transcription.program import Program
-from solvers.transcription.trajectory import Trajectory, related_with_multipliers
+from solvers.transcription.trajectory import Trajectory, related, related_with_multipliers
+
+Array = NDArray[np.float64]
 
 LOST = (Outcome.FAILED, Outcome.ITERATIONS, Outcome.INFEASIBLE)
 """Ends of the minimiser that a wrong size may bring about."""
@@ -113,12 +116,20 @@ def _straight(program: Program, start: Start, minimise_: Minimiser) -> Minimum |
     return found if found is not None and minimum_of_program(program, found) else None
 
 
+def begin_at(pursuit: Pursuit, minimise_: Minimiser, start: Trajectory) -> tuple[Program, Minimum] | None:
+    """The first mesh, from a trajectory of a related form of the problem that may be far from any end."""
+    mesh = first_mesh(len(pursuit.problem.places) - 1)
+    where = layout(pursuit.compiled, mesh)
+    z = related(start, pursuit.compiled, mesh, where)
+    pursuit.first = make_program(pursuit.compiled, mesh, where, z)
+    return _unless_it_runs_away(pursuit, pursuit.first, z, minimise_, {})
+
+
 def begin_from(
-    pursuit: Pursuit, minimise_: Minimiser, start: Trajectory, mesh: Mesh | None, iterations: int | None = None
+    pursuit: Pursuit, minimise_: Minimiser, start: Trajectory, mesh: Mesh, iterations: int | None = None
 ) -> tuple[Program, Minimum] | None:
-    """The first mesh, from a trajectory of a related form of the problem; where it is said within how many iterations,
-    in a single attempt."""
-    mesh = mesh or first_mesh(len(pursuit.problem.places) - 1)
+    """The first mesh, from a trajectory of a related form of the problem near its end; where it is said within how many
+    iterations, in a single attempt."""
     where = layout(pursuit.compiled, mesh)
     carried = related_with_multipliers(start, pursuit.compiled, mesh, where)
     z = carried.z
@@ -154,13 +165,20 @@ def _after_least_violation(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Prog
         pursuit.findings = pursuit.broken = least.findings
         pursuit.nearest = curve_of_least_violation(program, least)
         return None
-    minimum = minimise_(program, Start(least.z), STEADY)
+    return _unless_it_runs_away(pursuit, program, least.z * program.scale, minimise_, STEADY)
+
+
+def _unless_it_runs_away(
+    pursuit: Pursuit, program: Program, z: Array, minimise_: Minimiser, options: dict[str, Any]
+) -> tuple[Program, Minimum] | None:
+    """Minimise from z (SI); where the value runs away, find out whether it does so without end."""
+    minimum = minimise_(program, Start(z / program.scale), options)
     if minimum.outcome in SOLVED:
         return program, minimum
     pursuit.end = end_of(minimum)
     if pursuit.end in (End.STOPPED, End.TIME) or not _runs_away(minimum):
         return None
-    return in_growing_boxes(pursuit, program.mesh, program.layout, least.z * program.scale, minimise_)
+    return in_growing_boxes(pursuit, program.mesh, program.layout, z, minimise_)
 
 
 def _outgrown(minimum: Minimum) -> bool:

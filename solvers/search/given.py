@@ -12,6 +12,7 @@ from solvers.search.record import End, Pursuit
 from solvers.search.sharpen import sharpen
 from solvers.search.signals import jumps_at_breaks
 from solvers.solution import Watch
+from solvers.transcription.trajectory import Trajectory
 
 SHARE = 0.6
 """Share of the remaining time that the search for switches may take."""
@@ -21,10 +22,15 @@ NEARLY = 30.0
 """How far from the tolerance, as a factor, plain meshes are given a chance to finish first."""
 
 
-def solve_as_given(problem: Problem, watch: Watch | None, deadline: Deadline) -> Pursuit:
-    """Plain meshes first; where controls switch, then the switches as unknowns; else plain meshes to the end."""
+def solve_as_given(
+    problem: Problem, watch: Watch | None, deadline: Deadline, start: Trajectory | None = None
+) -> Pursuit:
+    """Plain meshes first; where controls switch, then the switches as unknowns; else plain meshes to the end.
+
+    From the default guess, or from a curve that was found before.
+    """
     began = time.process_time()
-    pursuit = pursue(problem, watch, deadline, meshes=1)
+    pursuit = pursue(problem, watch, deadline, meshes=1, start=start)
     early = sharpened_early(pursuit, watch, deadline)
     if early is not None:
         return _after(pursuit, early)

@@ -12,7 +12,7 @@ from solvers.minimise.ipopt import WARM, Minimum, Outcome, Start
 from solvers.problem import Problem
 from solvers.search import refinement
 from solvers.search.attempt import SOLVED, end_of, loose, make_program
-from solvers.search.beginning import FEW_ITERATIONS, begin, begin_from
+from solvers.search.beginning import FEW_ITERATIONS, begin, begin_at, begin_from
 from solvers.search.corners import at_corners
 from solvers.search.effort import Minimiser
 from solvers.search.record import End, Pursuit
@@ -63,14 +63,19 @@ def pursue(
 ) -> Pursuit:
     """Solve one form of a problem on at most so many meshes.
 
-    From a trajectory of a related form where one is given; then a single attempt is made where it is also said within
-    how many `iterations`.
+    From a trajectory of a related form where one is given: on a mesh of its own where that is near its end, and then in
+    a single attempt where it is also said within how many `iterations`; without a mesh as from any guess.
     """
     problem = with_widths(problem)
     compiled = compile_problem(lower(problem))
     pursuit = Pursuit(problem, compiled)
     minimiser = Minimiser(pursuit, watch, deadline)
-    begun = begin(pursuit, minimiser) if start is None else begin_from(pursuit, minimiser, start, mesh, iterations)
+    if start is None:
+        begun = begin(pursuit, minimiser)
+    elif mesh is None:
+        begun = begin_at(pursuit, minimiser, start)
+    else:
+        begun = begin_from(pursuit, minimiser, start, mesh, iterations)
     if begun is None:
         return pursuit
     _add(pursuit, minimiser, *begun)

@@ -143,6 +143,7 @@ class Neighbours:
             steps=[step],
             paths=[path],
             estimates=[found],
+            first=before.first,
             value_error=size * (growth * measured.value_error + found.worst**2 + SAFETY * FLOOR),
             curve_error=growth * measured.curve_error + found.worst,
         )

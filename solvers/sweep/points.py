@@ -27,7 +27,7 @@ Array = NDArray[np.float64]
 
 ORDER = (
     Verdict.GLOBAL_MINIMUM, Verdict.GLOBAL_MAXIMUM, Verdict.LOCAL_MINIMUM, Verdict.LOCAL_MAXIMUM, Verdict.STATIONARY,
-    Verdict.NOT_A_MINIMUM, Verdict.NOT_A_MAXIMUM, Verdict.BEST_FOUND, Verdict.NOT_VERIFIED, Verdict.NO_OPTIMUM,
+    Verdict.NO_OPTIMUM, Verdict.NOT_A_MINIMUM, Verdict.NOT_A_MAXIMUM, Verdict.BEST_FOUND, Verdict.NOT_VERIFIED,
     Verdict.INFEASIBLE, None,
 )  # fmt: skip
 """All verdicts, those that say more first."""
@@ -121,9 +121,12 @@ class _Sweep:
                     known = taken_over(before, step.convex, held)
                 solution = self.tools.judge(self.stepper.stated(at), step.found, drawn, known)
                 yield _Point(Origin(at, step.found), solution, bool(known))
-        problem = self.stepper.stated(at)
-        found = self.tools.alone(problem, self._room())
-        yield _Point(Origin(at, found), self.tools.judge(problem, found, drawn, {}), False)
+        problem, room = self.stepper.stated(at), self._room()
+        found: Found | None = self.tools.alone(problem, room)
+        while found is not None:
+            solution = self.tools.judge(problem, found, drawn, {})
+            yield _Point(Origin(at, found), solution, False)
+            found = self.tools.off_saddle(problem, found, solution, room)
 
     def _room(self) -> Deadline:
         """How long a point may take beyond what is done at every point."""

@@ -20,4 +20,5 @@ class Tools:
     judge: Callable[[Problem, Found, bool, Mapping[str, Check]], Solution]
     """With the curve where it is True, and with the checks that need not be made."""
     fits: Callable[[Problem, Found], bool]  # whether a point's form says the same as its problem
+    off_saddle: Callable[[Problem, Found, Solution, Deadline], Found | None]  # what lies beside it, if that is one
     form: Form  # the parametric one

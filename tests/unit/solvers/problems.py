@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import numpy as np
+from scipy.special import ellipe, ellipk
 
 from solvers.minimise.ipopt import Minimum, Outcome, Start, minimise
 from solvers.starts.guess import first_guess
@@ -61,6 +62,18 @@ def regulator(**members):
         "endpoints": ["x(0) = 1"],
     }
     return stated(**given | members)
+
+
+def swing(load, quarters):
+    """The integral of q'^2/2 + load cos q over a length of so many quarters of a swing of the pendulum
+    q'' = -load sin q: closed form by complete elliptic integrals of the parameter m = sin(a/2)^2, a the largest angle,
+    as K(m) = sqrt(load)/quarters; the mean of cos q is 2 E/K - 1, and q'^2/2 = load (cos q - cos a).
+    """
+    low, high = 0.0, 1.0 - 1e-12
+    for _ in range(100):
+        m = (low + high) / 2
+        low, high = (m, high) if ellipk(m) < np.sqrt(load) / quarters else (low, m)
+    return 2 * load * (2 * ellipe(m) / ellipk(m) - 1) - load * (1 - 2 * m)
 
 
 def compiled(problem):

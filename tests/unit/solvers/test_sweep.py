@@ -12,7 +12,7 @@ from solvers import solve as single
 from solvers.problem import Sweep
 from solvers.solution import Verdict
 from solvers.solve import solve
-from tests.unit.solvers.problems import LEAST_TIME, shape, stated
+from tests.unit.solvers.problems import LEAST_TIME, shape, stated, swing
 
 CHAIN = {
     "independent": {"name": "x", "from": -1, "to": 1},
@@ -72,8 +72,35 @@ def test_the_verdict_is_that_of_each_point():
     points = solve(swept(problem, L=[1.0, 2.0, 2.5, 3.0, 3.3, 4.0])).sweep
     good = {Verdict.LOCAL_MINIMUM, Verdict.GLOBAL_MINIMUM}
     assert [point.verdict in good for point in points] == [True] * 4 + [False] * 2
+    assert {point.verdict for point in points[4:]} == {Verdict.NO_OPTIMUM}  # what a single solve says
     for point in points[:4]:
         assert abs(point.value - 1 / np.tan(point.at[0])) <= point.value_error
+
+
+def test_beyond_its_critical_load_a_strut_is_bent():
+    # Euler (1744): up to the load pi^2 it stays straight, with the value P.
+    problem = stated(constants={"P": 5.0}, functional={"integrand": "u^2/2 + P*cos(x)"},
+                     endpoints=["x(0) = 0", "x(1) = 0"])  # fmt: skip
+    points = solve(swept(problem, P=[5.0, 9.0, 11.0, 15.0])).sweep
+    assert {point.verdict for point in points} <= {Verdict.LOCAL_MINIMUM, Verdict.GLOBAL_MINIMUM}
+    for point in points[:2]:
+        assert abs(point.value - point.at[0]) <= point.value_error
+    for point in points[2:]:
+        assert abs(point.value - swing(point.at[0], 2)) <= point.value_error
+
+
+def test_a_point_whose_curve_runs_away_says_so():
+    # The least integral of x'^2 + r over a free time T, from 0 to 1, is 2 sqrt(r), at T = 1/sqrt(r).
+    problem = stated(
+        constants={"r": 1.0},
+        independent={"name": "t", "from": 0, "to": "T"},
+        parameters={"T": {"within": [0.1, None]}},
+        functional={"integrand": "u^2 + r"},
+        endpoints=["x(0) = 0", "x(T) = 1"],
+    )
+    far, near, _ = solve(swept(problem, r=[0.0, 0.25, 1.0])).sweep
+    assert far.verdict is Verdict.NO_OPTIMUM
+    assert abs(near.value - 1) <= near.value_error and near.verdict is Verdict.LOCAL_MINIMUM
 
 
 def test_where_nothing_is_feasible_the_point_says_so_and_the_others_go_on():
