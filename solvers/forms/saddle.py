@@ -19,13 +19,12 @@ from solvers.checks import curvature, legendre
 from solvers.checks.sampling import Sampler
 from solvers.deadline import Deadline
 from solvers.forms.choice import Found, rightly_squared
-from solvers.forms.kinks import at_kinks
 from solvers.forms.signs import one_signed
-from solvers.forms.slack import with_slacks
 from solvers.minimise.ipopt import Minimum, Outcome
 from solvers.problem import Problem, Seek
 from solvers.search.given import solve_as_given
 from solvers.search.record import End, Pursuit
+from solvers.search.structure import without_switches
 from solvers.solution import Solution, Status, Verdict, Watch
 from solvers.transcription.trajectory import Trajectory, as_start, trajectory
 
@@ -64,7 +63,7 @@ def left_behind(problem: Problem, saddle: Solution) -> str:
 def off_saddle(problem: Problem, found: Found, watch: Watch | None, deadline: Deadline) -> Found | None:
     """What is found from beside a saddle: a better curve, or that there is no best one; None where neither is."""
     base, gauged = found.pursuit, found.gauged
-    form = with_slacks(at_kinks(problem) if gauged is None else gauged.problem)
+    form = without_switches(base.problem)
     spent = sum(step.seconds for step in base.steps)
     room = deadline.within(min(SHARE * deadline.left, PATIENCE * spent + LEAST))
     reached = []

@@ -38,6 +38,13 @@ Release = tuple[Quantity, float, float]
 """A quantity that is not to be held between two places."""
 
 
+def without_switches(problem: Problem) -> Problem:
+    """A problem as it was before its switches became places."""
+    places = tuple(place for place in problem.places if not place.label.startswith(SWITCH + " "))
+    parameters = tuple(p for p in problem.parameters if not p.name.startswith(SWITCH + " "))
+    return replace(problem, places=places, parameters=parameters, held=(), implied=(), calm=(), touches=())
+
+
 def with_switches(
     problem: Problem, found: list[Switch], path: Trajectory, linear: list[Quantity], loose: Sequence[Release] = ()
 ) -> Problem | None:

@@ -18,7 +18,7 @@ from solvers.search.pursuit import pursue
 from solvers.search.record import End, Pursuit
 from solvers.search.sharpen import sharpen, with_structure
 from solvers.search.signals import SWITCH
-from solvers.search.structure import smooth_contacts
+from solvers.search.structure import smooth_contacts, without_switches
 from solvers.transcription.functions import compile_problem
 from solvers.transcription.lowering import lower
 from solvers.transcription.mesh import Mesh, interval
@@ -44,10 +44,7 @@ def repaired(form: Problem, near: Trajectory, seen: Trajectory | None, deadline:
 
 def plainly(form: Problem, constants: Problem) -> Problem:
     """A form that the solver has given switches without them, for the constants of another problem."""
-    own = [place for place in form.places if not place.label.startswith(SWITCH + " ")]
-    parameters = tuple(p for p in form.parameters if not p.name.startswith(SWITCH + " "))
-    return replace(form, places=tuple(own), parameters=parameters, held=(), implied=(), calm=(), touches=(),
-                   constants=constants.constants)  # fmt: skip
+    return replace(without_switches(form), constants=constants.constants)
 
 
 def without_contacts(pursuit: Pursuit, deadline: Deadline) -> Trajectory:
@@ -59,7 +56,7 @@ def without_contacts(pursuit: Pursuit, deadline: Deadline) -> Trajectory:
     path = pursuit.paths[-1]
     if not smooth_contacts(path):
         return path
-    plain = pursue(plainly(pursuit.problem, pursuit.problem), None, deadline)
+    plain = pursue(without_switches(pursuit.problem), None, deadline)
     return plain.paths[-1] if plain.solved else path
 
 
