@@ -81,7 +81,7 @@ def _solve(stated: Problem, problem: Problem, watch: Watch | None, deadline: Dea
             continue
         room = deadline.within(DOUBTFUL * deadline.left) if doubtful else deadline
         gauged = gauged if gauged.squared else at_constant_speed(gauged, look())
-        hear = _in_original_terms(gauged, watch)
+        hear = in_original_terms(gauged, watch)
         pursuit = solve_as_given(with_slacks(with_widths(gauged.problem)), hear, room)
         if squared and pursuit.end in LOST and gauged.graph:  # its square has values where a root has none
             gauged = where_defined(at_constant_speed(gauged, look()))
@@ -99,7 +99,7 @@ def _solve(stated: Problem, problem: Problem, watch: Watch | None, deadline: Dea
     return Found(off_ridge(pursuit, watch, deadline) or with_corner(pursuit, watch, deadline) or pursuit, None)
 
 
-def _in_original_terms(gauged: Gauged, watch: Watch | None) -> Watch | None:
+def in_original_terms(gauged: Gauged, watch: Watch | None) -> Watch | None:
     """Hears of the parametric form and tells of the original: its values, and no places of the parameter."""
     if watch is None:
         return None

@@ -18,7 +18,7 @@ from numpy.typing import NDArray
 from solvers.checks import curvature, legendre
 from solvers.checks.sampling import Sampler
 from solvers.deadline import Deadline
-from solvers.forms.choice import Found, rightly_squared
+from solvers.forms.choice import Found, in_original_terms, rightly_squared
 from solvers.forms.signs import one_signed
 from solvers.minimise.ipopt import Minimum, Outcome
 from solvers.problem import Problem, Seek
@@ -64,11 +64,12 @@ def off_saddle(problem: Problem, found: Found, watch: Watch | None, deadline: De
     """What is found from beside a saddle: a better curve, or that there is no best one; None where neither is."""
     base, gauged = found.pursuit, found.gauged
     form = without_switches(base.problem)
+    hear = watch if gauged is None else in_original_terms(gauged, watch)
     spent = sum(step.seconds for step in base.steps)
     room = deadline.within(min(SHARE * deadline.left, PATIENCE * spent + LEAST))
     reached = []
-    for start in _beside(base):
-        pursuit = solve_as_given(form, watch, room, start)
+    for start in _beside(base, room):
+        pursuit = solve_as_given(form, hear, room, start)
         if pursuit.end is End.UNBOUNDED or (pursuit.end in LED_TO and _better(pursuit, base)):
             reached.append(pursuit)
     best = min(reached, key=_worth, default=None)
@@ -95,11 +96,11 @@ def _better(pursuit: Pursuit, base: Pursuit) -> bool:
     return _worth(pursuit) < _worth(base) - errors - base.problem.options.tolerance * base.value_size
 
 
-def _beside(base: Pursuit) -> list[Trajectory]:
+def _beside(base: Pursuit, deadline: Deadline) -> list[Trajectory]:
     """The curve moved along its falling direction: to both sides, to one where both are alike."""
     path = base.paths[-1]
     error = base.curve_error if np.isfinite(base.curve_error) else 0.0
-    direction = curvature.falling(Sampler(path), error)
+    direction = curvature.falling(Sampler(path), error, deadline)
     if direction is None:
         return []
     where = path.program.layout
