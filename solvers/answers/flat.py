@@ -15,7 +15,7 @@ from collections.abc import Callable, Collection
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.linalg import eigh, pinv, qr
+from scipy.linalg import eigh, pinv
 
 from solvers.checks import inertia
 from solvers.checks.sampling import Sampler
@@ -70,9 +70,7 @@ def _directions(sampler: Sampler, second: Second) -> Array:
     """
     columns = np.flatnonzero(~(second.fixed | second.resting))
     rows = np.flatnonzero(second.equalities | second.at_limit)
-    jacobian = inertia.normal(second.jacobian.sparse()[rows][:, columns]).toarray()
-    basis, triangle, _ = qr(jacobian.T, pivoting=True)
-    kernel = basis[:, np.count_nonzero(np.abs(np.diag(triangle)) > 1e-11) :]
+    kernel = inertia.kernel(inertia.normal(second.jacobian.sparse()[rows][:, columns]).toarray())
     size = np.zeros(len(sampler.path.z))
     if not kernel.shape[1]:
         return np.zeros((len(size), 0))

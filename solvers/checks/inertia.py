@@ -12,7 +12,7 @@ from dataclasses import dataclass
 import numpy as np
 import scipy.sparse as sp
 from numpy.typing import NDArray
-from scipy.linalg import eigh, qr
+from scipy.linalg import eigh, lapack, qr
 from scipy.sparse.linalg import ArpackError, LinearOperator, eigsh, splu
 
 from solvers.checks import condensed
@@ -35,6 +35,10 @@ TOGETHER = 16
 """So many columns of the border are solved for at once."""
 MOST = 3
 """So many negative directions are looked at where there are many variables."""
+CLEARLY = 1e-9
+"""The reciprocal condition from which on rows are clearly independent of each other."""
+DEPENDENT = 1e-11
+"""What a row has beside those before it, where it depends on them."""
 SWEEPS = 4
 """How often a direction is put onto the constraints: each time leaves a small share of what it was off."""
 REPEATED = 1e-10
@@ -71,11 +75,11 @@ def negative_directions(
     None where the factors are not to be trusted.  TimeoutError when the deadline passes.
     """
     if np.count_nonzero(free) <= FEW:
-        kernel, bend, size = _on_kernel(second, free, rows)
-        if not kernel.shape[1]:
-            return kernel
+        space, bend, size = _on_kernel(second, free, rows)
+        if not space.shape[1]:
+            return space
         quotients, vectors = eigh(bend, size)
-        return np.asarray(kernel @ vectors[:, quotients < -margin])
+        return np.asarray(space @ vectors[:, quotients < -margin])
     bordered = _bordered(second, free, rows, margin, deadline)
     if bordered is None:
         return None
@@ -198,20 +202,35 @@ def normal(jacobian: sp.csr_matrix) -> sp.csr_matrix:
 
 def least_quotient(second: Second, free: Flags, rows: Flags) -> float:
     """The least second variation relative to the mean square of a variation, on the exact kernel of the rows."""
-    kernel, bend, size = _on_kernel(second, free, rows)
-    return float(eigh(bend, size, eigvals_only=True, subset_by_index=[0, 0])[0]) if kernel.shape[1] else np.inf
+    space, bend, size = _on_kernel(second, free, rows)
+    return float(eigh(bend, size, eigvals_only=True, subset_by_index=[0, 0])[0]) if space.shape[1] else np.inf
+
+
+def kernel(rows: Array) -> Array:
+    """Orthonormal columns that span what rows of length one do not see.
+
+    Rows that are clearly independent are factorized as they stand, and of the factor only the columns wanted are made;
+    others with pivoting, which takes several times as long.
+    """
+    count, size = rows.shape
+    if 0 < count <= size:
+        (reflectors, factors), triangle = qr(rows.T, mode="raw")
+        if lapack.dtrcon(triangle[:count])[0] > CLEARLY:
+            last = np.eye(size)[:, count:]
+            return np.asarray(lapack.dormqr("L", "N", reflectors, factors, last, TOGETHER * max(size - count, 1))[0])
+    basis, triangle, _ = qr(rows.T, pivoting=True)
+    return np.asarray(basis[:, np.count_nonzero(np.abs(np.diag(triangle)) > DEPENDENT) :])
 
 
 def _on_kernel(second: Second, free: Flags, rows: Flags) -> tuple[Array, Array, Array]:
     """Directions (columns, on all variables) that span the kernel of the rows, and on it second variation and mean
     square, this with a little added that keeps it regular."""
     columns = np.flatnonzero(free)
-    jacobian = normal(second.jacobian.sparse()[np.flatnonzero(rows)][:, columns]).toarray()
-    basis, triangle, _ = qr(jacobian.T, pivoting=True)
-    kernel = np.zeros((len(free), len(columns) - np.count_nonzero(np.abs(np.diag(triangle)) > 1e-11)))
-    kernel[columns] = basis[:, len(columns) - kernel.shape[1] :]
-    bend, size = (np.asarray(kernel.T @ (form.sparse() @ kernel)) for form in (second.hessian, second.metric))
-    return kernel, bend, size + 1e-12 * np.trace(size) / max(len(size), 1) * np.eye(len(size))
+    own = kernel(normal(second.jacobian.sparse()[np.flatnonzero(rows)][:, columns]).toarray())
+    space = np.zeros((len(free), own.shape[1]))
+    space[columns] = own
+    bend, size = (np.asarray(space.T @ (form.sparse() @ space)) for form in (second.hessian, second.metric))
+    return space, bend, size + 1e-12 * np.trace(size) / max(len(size), 1) * np.eye(len(size))
 
 
 def _on_rows(second: Second, free: Flags, rows: Flags, directions: Array) -> Array:

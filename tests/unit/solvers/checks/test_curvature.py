@@ -166,3 +166,16 @@ def test_only_places_where_no_control_jumps_are_left_out(document, smooth, exami
     path = sharpen(pursue(problem_of(document), None, deadline, meshes=3), None, deadline).paths[-1]
     assert len(smooth_junctions(Sampler(path))) == smooth
     assert examine(curvature.check, path).status is Status.PASSED
+
+
+@pytest.mark.parametrize("count, doubled, dimension", [(0, 0, 9), (5, 0, 4), (5, 2, 6), (9, 0, 0), (12, 0, 0)])
+def test_the_kernel_is_all_that_rows_do_not_see(count, doubled, dimension):
+    """Also where some rows are (all but) copies of others, which must not pass for rows of their own."""
+    rng = np.random.default_rng(1)
+    rows = rng.normal(size=(count, 9))
+    rows[:doubled] = rows[doubled : 2 * doubled] + 1e-13 * rng.normal(size=(doubled, 9))
+    rows /= np.linalg.norm(rows, axis=1, keepdims=True)
+    found = inertia.kernel(rows)
+    assert found.shape == (9, dimension)
+    np.testing.assert_allclose(rows @ found, 0.0, atol=1e-12)
+    np.testing.assert_allclose(found.T @ found, np.eye(dimension), atol=1e-12)
