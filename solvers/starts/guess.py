@@ -192,9 +192,14 @@ def _size_parameters(compiled: Compiled, mesh: Mesh, where: Layout, places: Arra
         return
     base = parameters.copy()
     misfits = []
+    sketch: Sketch | None = None
+    guessed = any(unknown.guess is not None for unknown in problem.unknowns)  # else parameters do not move the lines
     for power in POWERS:
         parameters[open_ended] = base[open_ended] * 10.0**power
-        z = Sketch(compiled, mesh, where, places, parameters).bent(Bend())
+        if sketch is None or guessed:
+            sketch = Sketch(compiled, mesh, where, places, parameters)
+        z = sketch.bent(Bend())
+        z[where.parameters] = parameters
         misfits.append(_misfit(compiled, where, z))
     least = min(misfits)
     # The size nearest to one among those that fit as well as the best.
