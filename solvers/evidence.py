@@ -26,6 +26,7 @@ from solvers.forms.first_look import behind_guess
 from solvers.forms.gauge import Gauged
 from solvers.forms.graph import as_graph, checks_on_graph, prices_of_original, steps_of_original, uprights
 from solvers.forms.slack import SLACK
+from solvers.formula.nodes import Name
 from solvers.minimise.ipopt import FLOOR
 from solvers.problem import KINK, Problem, Seek
 from solvers.search.chatter import chatter
@@ -45,6 +46,7 @@ from solvers.solution import (
 )
 from solvers.tables.usage import table_notes
 from solvers.transcription.functions import SMOOTHING, rounded_functions
+from solvers.transcription.limits import constants_of, number
 from solvers.transcription.lowering import primed
 from solvers.transcription.trajectory import Trajectory, costate_curve, curve
 from solvers.undetermined import Undetermined, undetermined
@@ -66,6 +68,11 @@ UNDETERMINED = (
     "How the tolerances of the constants change the curve is left out: the optimality conditions do not determine it "
     "here (their matrix is singular, or nearly so)."
 )
+
+ROUNDED = 4 * float(np.finfo(float).eps)
+"""What rounding alone leaves open, relative: no error is stated that is smaller."""
+NO_LENGTH = 1e-9
+"""Length of the range, relative to the size of a free end, that counts as none."""
 
 LARGEST = 60_000
 """Unknowns of a mesh up to which the change of the whole curve is found: its system is factorised once more."""
@@ -104,7 +111,8 @@ def with_evidence(
     sampler = Sampler(path, None if gauged is None else Asked(problem.seek, gauged.value))
     rounded_off = rounding.effect(sampler)
     value, value_error = path.value, pursuit.value_error + rounded_off
-    curve_error = _if_finite(pursuit.curve_error)
+    value_floor = ROUNDED * abs(path.value)
+    curve_error = _if_finite(max(pursuit.curve_error, ROUNDED))
     same = problem if found.reduced is None else found.reduced.judged  # on every curve
     made = checks.run(path, original=same, value_error=_if_finite(value_error), curve_error=curve_error,
                       known=known, sampler=sampler)  # fmt: skip
@@ -121,6 +129,7 @@ def with_evidence(
         value_error, diagnosis = min(value_error, shown + rounded_off), None
     if verdict is Verdict.BEST_FOUND and behind_guess(problem, value if gauged is None else gauged.value(value)):
         verdict = Verdict.NOT_VERIFIED
+    value_error = max(value_error, value_floor)
     shape = multipliers = Curve(path.breaks, {})
     if drawn or gauged is not None:
         shape = curve(path)
@@ -173,7 +182,7 @@ def with_evidence(
         fit=fitted,
         notes=notes,
         switches=switches,
-        stretches=() if brief else _stretches(pursuit, gauged, errors),
+        stretches=() if brief else _stretches(pursuit, gauged, errors, verdict not in NO_OPTIMUM_FOUND),
     )
 
 
@@ -214,9 +223,11 @@ def _switches(pursuit: Pursuit, gauged: Gauged | None, errors: Sequence[float | 
                  for (place, error), switch in zip(told, found, strict=True))  # fmt: skip
 
 
-def _stretches(pursuit: Pursuit, gauged: Gauged | None, errors: Sequence[float | None]) -> tuple[Stretch, ...]:
+def _stretches(
+    pursuit: Pursuit, gauged: Gauged | None, errors: Sequence[float | None], extremal: bool
+) -> tuple[Stretch, ...]:
     """What lies between the switches; of a curve in parametric form what is said of the unknowns themselves."""
-    found = stretches(pursuit.paths[-1], errors)
+    found = stretches(pursuit.paths[-1], errors, extremal)
     if gauged is None or not found:
         return found
     names = {*(unknown.name for unknown in gauged.original.unknowns), *(c.label for c in gauged.original.conditions)}
@@ -251,6 +262,17 @@ def about_switches(problem: Problem, found: Solution) -> str:
     listed = ", ".join(known_digits(switch.place / factor, switch.error / factor) for switch in found.switches)
     word = "Switches" if any(switch.of for switch in found.switches) else "Corners"
     return f"{word} were found and made unknowns of the problem: {problem.independent} = {listed}{unit}."
+
+
+def _no_length(problem: Problem, path: Trajectory) -> bool:
+    """Whether the ends of a range, of which one is free, came together."""
+    names = [parameter.name for parameter in path.program.compiled.lowered.problem.parameters]
+    values = dict(zip(names, path.parameters.tolist(), strict=True))
+    sizes = dict(zip(names, path.program.scales.parameters.tolist(), strict=True))
+    ends = problem.places[0].tree, problem.places[-1].tree
+    free = [end.name for end in ends if isinstance(end, Name) and end.name in values]
+    start, end = (number(tree, constants_of(path.program.compiled) | values) for tree in ends)
+    return any(abs(end - start) <= NO_LENGTH * sizes[name] for name in free)
 
 
 def _with_uprights(pursuit: Pursuit, gauged: Gauged) -> Pursuit:
@@ -296,6 +318,8 @@ def _notes(problem: Problem, found: Found, pursuit: Pursuit) -> list[str]:
         notes.append(f"{primed(crowd.control)} chatters: it switches ever faster towards {place}{unit}, each time "
                      f"after some {crowd.ratio:.2f} of the time before. The first switches were found; what follows "
                      "runs as their mean.")  # fmt: skip
+    if _no_length(problem, pursuit.paths[-1]):
+        notes.append("The best curve has no length: it ends where it begins, and what is shown of it is a point.")
     if pursuit.end is End.SETTLED:
         notes.append("The value stands still to the tolerance; the curve may be less exact than the value.")
     return notes

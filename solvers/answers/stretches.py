@@ -19,12 +19,14 @@ from solvers.search.chatter import chatter
 from solvers.search.signals import SWITCH
 from solvers.search.structure import determined_by
 from solvers.solution import Course, Stretch
+from solvers.transcription.functions import linear_controls
 from solvers.transcription.limits import constants_of, interval_of, quantity_bounds
 from solvers.transcription.lowering import Quantity, primed
 from solvers.transcription.trajectory import Trajectory
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]
+Flags = NDArray[np.bool_]
 
 ON_LIMIT = 1e-6
 """How near to a limit, relative to the room it leaves, counts as on it where nothing is held there."""
@@ -37,17 +39,20 @@ Edge = tuple[float, float | None]
 """Where a stretch begins or ends, and how far that may be off."""
 
 _SIDES = {-1: Course.LOWER, 1: Course.UPPER}
+_INSIDE, _SINGULAR = 0, 2
+_COURSES = {**_SIDES, _INSIDE: Course.INSIDE, _SINGULAR: Course.SINGULAR}
 
 
-def stretches(path: Trajectory, errors: Sequence[float | None]) -> tuple[Stretch, ...]:
-    """All stretches of a path whose switches are places, quantity by quantity; none of a path without structure.
+def stretches(path: Trajectory, errors: Sequence[float | None], extremal: bool = False) -> tuple[Stretch, ...]:
+    """All stretches of a path whose switches are places, quantity by quantity.
 
+    Of a path without structure only controls that do the same from end to end, where it is known to be an `extremal`.
     `errors` are those of the places, None for given ones (`solvers.answers.place_errors`).
     """
     problem = path.program.compiled.lowered.problem
     switches = any(place.label.startswith(SWITCH + " ") for place in problem.places)
     if not (switches or problem.held or problem.calm):
-        return ()
+        return tuple(_Reader(path, errors).throughout()) if extremal else ()
     return tuple(_Reader(path, errors).all())
 
 
@@ -83,16 +88,29 @@ class _Reader:
 
     def all(self) -> Iterator[Stretch]:
         for quantity in self.limited:
-            sides = self.controls[:, self.compiled.lowered.controls.index(quantity)]
-            codes = np.where(self._singular(quantity) & (sides == 0), 2, sides)
-            told = {**_SIDES, 0: Course.INSIDE, 2: Course.SINGULAR}
-            for start, end, code in self._runs(codes, fewest=2):
-                yield from self._without_crowd(_between(start, end, primed(quantity), told[code], control=True))
+            calm = np.isin(self.stretch, [c.stretch for c in self.problem.calm if (c.name, c.order) == quantity])
+            for start, end, code in self._runs(self._codes(quantity, calm), fewest=2):
+                yield from self._without_crowd(_between(start, end, primed(quantity), _COURSES[code], control=True))
         for index, quantity in enumerate(self.compiled.lowered.states):
             yield from self._on_limits(primed(quantity), self.states[:, index])
         for index, condition in enumerate(self.compiled.pointwise):
             if condition.pointer and not self.equal[index]:
                 yield from self._on_limits(condition.label, self.constraints[:, index])
+
+    def throughout(self) -> Iterator[Stretch]:
+        """Controls that act linearly and are on one limit, or singular, all along."""
+        everywhere = np.ones(len(self.stretch), dtype=bool)
+        for index in linear_controls(self.compiled):
+            quantity = self.compiled.lowered.controls[index]
+            codes = self._codes(quantity, everywhere)
+            if codes[0] != _INSIDE and (codes == codes[0]).all():
+                for start, end, code in self._runs(codes, fewest=1):
+                    yield _between(start, end, primed(quantity), _COURSES[code], control=True)
+
+    def _codes(self, quantity: Quantity, calm: Flags) -> Indices:
+        """What a control does at every point; where it is `calm` it may be singular."""
+        sides = self.controls[:, self.compiled.lowered.controls.index(quantity)]
+        return np.where(self._singular(quantity, calm) & (sides == _INSIDE), _SINGULAR, sides)
 
     def _without_crowd(self, found: Stretch) -> Iterator[Stretch]:
         """What follows the switches that were found of a control that chatters is not singular before they crowd."""
@@ -119,9 +137,8 @@ class _Reader:
             sides[self.stretch == held.stretch, column] = held.side
         return sides
 
-    def _singular(self, quantity: Quantity) -> NDArray[np.bool_]:
+    def _singular(self, quantity: Quantity, calm: Flags) -> Flags:
         """Where a control is calm, and the constraints that bind there leave it free together with the others."""
-        calm = np.isin(self.stretch, [c.stretch for c in self.problem.calm if (c.name, c.order) == quantity])
         n, lowered = self.compiled.point.states, self.compiled.lowered
         count, own = len(lowered.controls), lowered.controls.index(quantity)
         occurs = np.zeros((self.compiled.point.constraints, count), dtype=bool)

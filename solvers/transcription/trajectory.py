@@ -176,7 +176,7 @@ def curve(path: Trajectory) -> Curve:
 
 
 def costate_curve(path: Trajectory) -> Curve:
-    """The costates, and the multipliers of the pointwise constraints that bind, in the user's sense of better."""
+    """The costates, and the multipliers of the user's pointwise constraints that bind, in his sense of better."""
     compiled = path.program.compiled
     sign = -1.0 if compiled.lowered.problem.seek is Seek.MAXIMUM else 1.0
     functions = {
@@ -187,7 +187,7 @@ def costate_curve(path: Trajectory) -> Curve:
     sizes = path.program.row_scale[rows.pointwise : rows.rims].reshape(path.multipliers.shape)
     pushes = np.abs(path.row_multipliers[rows.pointwise : rows.rims].reshape(sizes.shape) * sizes).sum(axis=0)
     for index, condition in enumerate(compiled.pointwise):
-        if pushes[index] > BINDING * abs(path.program.value_scale):
+        if condition.pointer and pushes[index] > BINDING * abs(path.program.value_scale):
             functions[condition.label] = tuple(path.pieces(sign * path.multiplier_modes[:, :, index]))
     return Curve(path.breaks, functions)
 

@@ -88,6 +88,36 @@ def test_the_user_reads_of_his_functional_whatever_form_was_solved(seek):
     assert told["Legendre"].count("convex") == (sign > 0)
 
 
+def test_no_error_is_stated_that_is_smaller_than_rounding():
+    """A straight line is exact on any mesh, as far as numbers go: half their spacing is what is lost at the least."""
+    solution = solve(shape(functional={"integrand": "y'^2"}, endpoints=["y(0) = 0", "y(3) = 1"]))
+    eps = float(np.finfo(float).eps)
+    assert solution.curve_error >= eps
+    assert solution.value_error >= eps * solution.value
+
+
+def test_unknowns_of_our_own_have_no_multipliers_to_show():
+    """abs(y') is written with an unknown that bounds it; its multipliers, up to one, are nothing of the user's."""
+    total = {"functional": {"integrand": "abs(y') + (y - x)^2"}, "endpoints": ["y(0) = 1", "y(3) = 0"]}
+    solution = solve(shape(**total))
+    assert set(solution.costates.functions) == {"y"}
+
+
+def test_a_curve_without_length_is_said_to_have_none():
+    """Nothing has to be done, and everything costs: it is best to end at once."""
+    free = {
+        "independent": {"name": "x", "from": 0, "to": "T"},
+        "parameters": {"T": {"within": [0, 10]}},
+        "functional": {"integrand": "1 + y'^2"},
+    }
+    point = solve(shape(**free, endpoints=["y(0) = 0", "y(T) = 0"]))
+    assert point.parameters["T"] == pytest.approx(0, abs=1e-9)
+    assert any("has no length" in note for note in point.notes)
+    line = solve(shape(**free, endpoints=["y(0) = 0", "y(T) = 1"]))  # value T + 1/T
+    assert line.parameters["T"] == pytest.approx(1, rel=1e-5)
+    assert not any("has no length" in note for note in line.notes)
+
+
 def test_of_two_soap_films_the_stable_one_is_found():
     """Between rings of height cosh(3/2) the film y = cosh(x - 3/2) is an extremal too, but not a minimum."""
     ring = {"h": float(np.cosh(1.5))}

@@ -93,6 +93,20 @@ def test_on_arcs_each_has_its_own():
     assert ends[1] == pytest.approx(solution.stretches[2].start)
 
 
+def test_a_control_that_is_singular_all_along_is_said_to_be():
+    """The stock begins and ends where it grows fastest, at 1/2: it stays there, with u = 1/4 all along."""
+    solution = solve(stated(**{**HARVEST, "endpoints": ["x(0) = 0.5", "x(10) = 0.5"]}))
+    assert solution.value == pytest.approx(2.5, rel=1e-7)
+    assert _told(solution, "u") == [(SINGULAR, 0, 36_000)]
+    assert "u runs singular from t = 0 to 10 h." in solution.notes
+
+
+def test_a_control_that_is_on_its_limit_all_along_is_said_to_be():
+    """Too little time to let the stock grow before the catch: with the end free everything is taken."""
+    hasty = {**HARVEST, "independent": {"name": "t", "unit": "h", "from": 0, "to": 0.5}, "endpoints": ["x(0) = 1"]}
+    assert _told(solve(stated(**hasty)), "u") == [(UPPER, 0, 1800)]
+
+
 def test_without_switches_there_is_nothing_to_say():
     smooth = {**LEAST_FUEL, "functional": {"integrand": "u^2"}, "unknowns": {"x": {}, "u": {}}}
     assert solve(stated(**smooth)).stretches == ()
