@@ -38,6 +38,8 @@ _SENTENCES = {
     "optimum. A bound on an unknown or one more condition may be missing.",
     End.TORN: "The curve degenerates: the better it gets, the nearer it comes to one that is no continuous function; "
     "the value is approached but not attained.",
+    End.WIGGLES: "The value is approached but not attained: the faster a slope or a control changes to and fro between "
+    "two values, the better. Shown is the curve that such curves tend to.",
     End.AWAY: "The value is approached but not attained: it gets no worse the farther the curve goes, so there is no "
     "optimum. A bound or one more condition may be missing.",
     End.FAILED: "No further progress was possible from any of the default guesses. A guess of your own, bounds on the "

@@ -116,6 +116,8 @@ def with_evidence(
     same = problem if found.reduced is None else found.reduced.judged  # on every curve
     made = checks.run(path, original=same, value_error=_if_finite(value_error), curve_error=curve_error,
                       known=known, sampler=sampler)  # fmt: skip
+    if pursuit.end is End.WIGGLES:  # the others are about how the mean is mixed
+        made = tuple(check for check in made if check.name in checks.FEASIBLE)
     if conditions.NAME not in known and np.isfinite(taken := conditions.value_anew(sampler)):
         value_error += abs(taken - value)
     if left_open := checks.left_open(made):
@@ -157,11 +159,13 @@ def with_evidence(
     loose = () if found.reduced is None else found.reduced.undetermined
     if not brief and not loose:
         loose = _undetermined(problem, path, gauged, made, value_error)
-    kept = {name: functions for name, functions in shape.functions.items() if not name.startswith(SLACK + " ")}
+    known_names = {unknown.name for unknown in problem.unknowns}  # not those of auxiliary ones
+    kept = {name: functions for name, functions in shape.functions.items() if name.rstrip("'") in known_names}
     fitted = None if brief else fit(path)
     notes = () if brief else (*_notes(problem, found, pursuit), *([left_out] if left_out else []))
     errors = place_errors(pursuit)
-    switches = _switches(pursuit, gauged, errors)
+    plain = pursuit.end is not End.WIGGLES  # what is mixed is no control of the problem
+    switches = _switches(pursuit, gauged, errors) if plain else ()
     return Solution(
         verdict=verdict,
         value=value,
@@ -182,7 +186,7 @@ def with_evidence(
         fit=fitted,
         notes=notes,
         switches=switches,
-        stretches=() if brief else _stretches(pursuit, gauged, errors, verdict not in NO_OPTIMUM_FOUND),
+        stretches=_stretches(pursuit, gauged, errors, verdict not in NO_OPTIMUM_FOUND) if plain and not brief else (),
     )
 
 
@@ -301,7 +305,7 @@ def _notes(problem: Problem, found: Found, pursuit: Pursuit) -> list[str]:
     """What was done to the problem that its reader should know."""
     gauged = found.gauged
     notes = [form.note for form in (gauged, found.reduced) if form is not None]
-    if len(pursuit.problem.unknowns) > len(problem.unknowns) and gauged is None:
+    if any(unknown.name.startswith(SLACK + " ") for unknown in pursuit.problem.unknowns) and gauged is None:
         notes.append("abs, max or min in the integrand: written exactly, with auxiliary unknowns that bound them.")
     if any(place.label.startswith(KINK + " ") for place in pursuit.problem.places):
         notes.append("Kinks of formulas that are given along the range lie on breaks of the mesh: they are exact.")

@@ -40,7 +40,7 @@ def judge(seek: Seek, checks: Sequence[Check], end: End = End.CONVERGED) -> Verd
 
     if not holds(FEASIBLE):
         return Verdict.NOT_VERIFIED
-    if end in (End.TORN, End.AWAY):  # feasible curves, each better than the one before, tend to none
+    if end in (End.TORN, End.WIGGLES, End.AWAY):  # feasible curves, each better than the one before, tend to none
         return Verdict.NO_OPTIMUM
     if status.get(lower_bound.NAME) is Status.PASSED:  # no curve is better, however this one was found
         return _WORDS[seek][0]

@@ -45,6 +45,10 @@ _REASONS = {
         "The curve degenerates",
         "A limit on the slope, or a cost that grows faster with it, keeps it whole.",
     ),
+    "wiggles": (
+        "The curve would have to wiggle ever faster",
+        "A cost on how fast it changes, or one that is convex in the slope, gives it rest.",
+    ),
     "runs away": ("The curve runs away", "A bound, or one more condition, may be missing."),
     "no progress": ("The search got stuck", ""),
     "points limit": ("The mesh reached its limit before the tolerance", ""),

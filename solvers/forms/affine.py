@@ -90,6 +90,11 @@ def linear_by_parts(tree: Node, problem: Problem) -> bool:
     return _linear(written_out(tree, problem), _slopes(problem), kinks=True)
 
 
+def linear_in(tree: Node, names: Sequence[Name]) -> bool:
+    """Whether a formula is proved to be linear in all these names together, and without kinks in them."""
+    return _linear(bare(tree), names, kinks=False)
+
+
 def reduced(problem: Problem) -> Reduced | Turning | None:
     """A problem whose integrand is linear in the slopes without them; None where it is no such problem."""
     if problem.integrand is None or not _pure(problem):

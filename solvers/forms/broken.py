@@ -58,7 +58,7 @@ def with_corner(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursu
         sampler = Sampler(path)
         if weierstrass.check(sampler).status is not Status.FAILED:
             return None
-        slopes = _pair(sampler)
+        slopes = straight_piece(sampler, 0)
     found = []
     for first, second in (slopes, slopes[::-1]) if slopes else ():
         changed = _bent(problem, path, first, second)
@@ -108,14 +108,15 @@ def _better(pursuit: Pursuit, base: Pursuit, sign: float) -> bool:
         return weierstrass.check(Sampler(pursuit.paths[-1])).status is Status.PASSED
 
 
-def _pair(sampler: Sampler) -> tuple[float, float] | None:
-    """The ends of the straight piece of the integrand's convex hull over the curve's slope, where most is gained."""
+def straight_piece(sampler: Sampler, control: int) -> tuple[float, float] | None:
+    """The ends of the straight piece of the integrand's convex hull over the curve's own value of a control (a slope),
+    where most is gained."""
     gains, _, _ = weierstrass.best_trials(sampler)
     worst = int(np.argmax(gains * np.abs(sampler.halves.measure)))
-    n = sampler.point.states
+    n = sampler.point.states + control
     own = float(sampler.halves.v[worst, n])
-    reach = WIDEST * max(abs(own), float(sampler.control_sizes[0]))
-    lower, upper = float(sampler.bounds[2][0]), float(sampler.bounds[3][0])
+    reach = WIDEST * max(abs(own), float(sampler.control_sizes[control]))
+    lower, upper = float(sampler.bounds[2][control]), float(sampler.bounds[3][control])
     slopes = np.linspace(max(own - reach, lower), min(own + reach, upper), SLOPES)
     v, d = (np.repeat(part[worst][None], SLOPES, axis=0) for part in (sampler.halves.v, sampler.halves.d))
     v[:, n] = slopes

@@ -15,6 +15,7 @@ from solvers.forms.gauge import Form, Gauged
 from solvers.forms.jumping import solve_without_slopes
 from solvers.forms.kinks import at_kinks
 from solvers.forms.kinks_by_ends import by_ends
+from solvers.forms.mixture import with_mixture
 from solvers.forms.ridge import off_ridge
 from solvers.forms.signs import better_below, one_signed, positive, positive_along, where_defined
 from solvers.forms.slack import with_slacks
@@ -96,7 +97,10 @@ def _solve(stated: Problem, problem: Problem, watch: Watch | None, deadline: Dea
             cornered = _with_limited_slope(problem, watch, deadline) if gauged.graph and pursuit.solved else None
             return Found(pursuit, gauged) if cornered is None else Found(cornered, None)
     pursuit = solve_as_given(with_slacks(with_widths(problem)), watch, deadline)
-    return Found(off_ridge(pursuit, watch, deadline) or with_corner(pursuit, watch, deadline) or pursuit, None)
+    for further in (off_ridge, with_corner, with_mixture):
+        if (better := further(pursuit, watch, deadline)) is not None:
+            return Found(better, None)
+    return Found(pursuit, None)
 
 
 def in_original_terms(gauged: Gauged, watch: Watch | None) -> Watch | None:

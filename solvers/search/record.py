@@ -29,6 +29,7 @@ class End(Enum):
     NOWHERE = "no curve found"  # that satisfies all conditions
     UNBOUNDED = "unbounded"
     TORN = "degenerates"  # the curve tends to one that jumps
+    WIGGLES = "wiggles"  # the faster a control changes between two values, the better
     AWAY = "runs away"  # the curve is the better the farther it goes
     UNDEFINED = "undefined"
     FAILED = "no progress"
