@@ -124,7 +124,7 @@ def with_evidence(
         value_error += left_open * max(abs(value), abs(path.program.value_scale))
     diagnosis = with_feasibility(diagnosis, made)
     verdict = judge(problem.seek, made, pursuit.end)
-    if verdict in PROVED and pursuit.end is End.TIME and may_escape(pursuit):
+    if verdict in PROVED and pursuit.end in (End.TIME, End.FAR) and may_escape(pursuit):
         verdict = Verdict.BEST_FOUND  # the bound may be one that is only approached, and nobody had time to find out
     if verdict in PROVED and (gap := lower_bound.gap(made)) is not None:  # the bound says it better than the meshes
         shown = gap * pursuit.value_size + FLOOR * abs(path.program.value_scale)
