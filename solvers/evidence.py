@@ -129,6 +129,7 @@ def with_evidence(
     if verdict in PROVED and (gap := lower_bound.gap(made)) is not None:  # the bound says it better than the meshes
         shown = gap * pursuit.value_size + FLOOR * abs(path.program.value_scale)
         value_error, diagnosis = min(value_error, shown + rounded_off), None
+        made = lower_bound.settled(made, checks.FEASIBLE)
     if verdict is Verdict.BEST_FOUND and behind_guess(problem, value if gauged is None else gauged.value(value)):
         verdict = Verdict.NOT_VERIFIED
     value_error = max(value_error, value_floor)

@@ -10,7 +10,8 @@ Reference: Moore (1966), Interval Analysis, chapter 3 (from memory).
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Collection, Sequence
+from dataclasses import replace
 
 from solvers.checks import conditions
 from solvers.checks.composition import Leaf, Shape, Unfold, shape_of
@@ -50,6 +51,21 @@ def gap(checks: Sequence[Check]) -> float | None:
     """How far the value is from the bound, relative to its size, where that shows that no curve is better."""
     found = (check.figure for check in checks if check.name == NAME and check.status is Status.PASSED)
     return next(found, None)
+
+
+def settled(checks: Sequence[Check], feasible: Collection[str]) -> tuple[Check, ...]:
+    """The checks of a curve that reaches the bound: those that failed, but for the `feasible` ones, do not apply.
+
+    All the others look for what could be better, and measure it by the size of the functional: near a bound of zero by
+    next to nothing.  What they found is told, for the curve may be known less well than the value.
+    """
+    return tuple(
+        replace(check, status=Status.NOT_APPLICABLE,
+                sentence=f"No curve is better, as the lower bound shows; by itself this says: {check.sentence}")
+        if check.status is Status.FAILED and check.name not in feasible
+        else check
+        for check in checks
+    )  # fmt: skip
 
 
 def best_possible(problem: Problem) -> float:

@@ -1,9 +1,14 @@
 """A value that no curve can better proves the global minimum, by interval arithmetic."""
 
+import json
+
 import pytest
 
+from service.assemble import assemble
+from service.spec import read
 from solvers.checks import lower_bound
-from solvers.solution import Check, Status
+from solvers.solution import Check, Status, Verdict
+from solvers.solve import solve
 
 STEP = {
     "independent": {"name": "x", "from": -1, "to": 1},
@@ -64,6 +69,25 @@ def test_no_bound_says_nothing(sketched, examine, integrand):
 def test_the_bound(sketched, members, bound):
     path = sketched({**STEP, **members}, *curve(1.0))
     assert lower_bound.best_possible(path.program.compiled.lowered.problem) == pytest.approx(bound)
+
+
+def test_what_looks_for_better_curves_does_not_apply_where_there_are_none():
+    failed = [Check(name, Status.FAILED, f"The {name} is off.", 0.1, 1e-3) for name in ("motion", "stationarity")]
+    fine = Check("free ends", Status.PASSED, "It is stationary.", 1e-9, 1e-3)
+    motion, stationarity, ends = lower_bound.settled([*failed, fine], ["motion"])
+    assert (motion, ends) == (failed[0], fine)
+    assert stationarity.status is Status.NOT_APPLICABLE
+    assert stationarity.figure == 0.1 and stationarity.sentence.endswith("The stationarity is off.")
+
+
+@pytest.mark.parametrize("integrand", ["y^2*(1 - y')^2", "(y'^2 - 9)^2"])
+def test_no_line_contradicts_the_proof(integrand):
+    """Both functionals reach zero, on curves where second derivatives vanish or multipliers are not unique."""
+    document = {**STEP, "format": 1, "functional": {"seek": "minimum", "integrand": integrand}}
+    found = solve(assemble(read(json.dumps(document).encode())))
+    assert found.verdict is Verdict.GLOBAL_MINIMUM
+    assert not any(check.status is Status.FAILED for check in found.checks)
+    assert any("by itself this says" in check.sentence for check in found.checks)
 
 
 def test_the_gap_is_told_only_where_it_is_proved():
