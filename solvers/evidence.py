@@ -15,7 +15,7 @@ from solvers.answers.place_errors import known_digits, place_errors
 from solvers.answers.prices import prices
 from solvers.answers.sensitivity import Shift, limit_shifts, slopes
 from solvers.answers.stretches import stretches
-from solvers.checks import conditions, curvature, lower_bound, refinement, rounding
+from solvers.checks import conditions, curvature, held_arcs, lower_bound, refinement, rounding
 from solvers.checks.redundancy import unambiguous
 from solvers.checks.sampling import Asked, Sampler
 from solvers.curve import Curve
@@ -71,6 +71,8 @@ UNDETERMINED = (
 
 ROUNDED = 4 * float(np.finfo(float).eps)
 """What rounding alone leaves open, relative: no error is stated that is smaller."""
+CURVE_FLOOR = 1e-10
+"""What the minimiser itself leaves open of the curve, relative to its size."""
 NO_LENGTH = 1e-9
 """Length of the range, relative to the size of a free end, that counts as none."""
 
@@ -110,9 +112,9 @@ def with_evidence(
                   if p.name in names}  # fmt: skip
     sampler = Sampler(path, None if gauged is None else Asked(problem.seek, gauged.value))
     rounded_off = rounding.effect(sampler)
-    value, value_error = path.value, pursuit.value_error + rounded_off
+    value, value_error = path.value, pursuit.value_error + rounded_off + held_arcs.gain(sampler)
     value_floor = ROUNDED * abs(path.value)
-    curve_error = _if_finite(max(pursuit.curve_error, ROUNDED))
+    curve_error = _if_finite(pursuit.curve_error + CURVE_FLOOR)
     same = problem if found.reduced is None else found.reduced.judged  # on every curve
     made = checks.run(path, original=same, value_error=_if_finite(value_error), curve_error=curve_error,
                       known=known, sampler=sampler)  # fmt: skip

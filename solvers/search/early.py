@@ -13,7 +13,7 @@ from solvers.search.pursuit import go_on, pursue
 from solvers.search.record import End, Pursuit
 from solvers.search.refinement import smooth_all_along
 from solvers.search.sharpen import agrees, alike, mesh_between, slow
-from solvers.search.signals import Switch, switches
+from solvers.search.signals import Switch, jumps_at_breaks, switches
 from solvers.search.structure import at_the_edge, with_switches
 from solvers.solution import Watch
 from solvers.transcription.functions import linear_controls
@@ -111,4 +111,5 @@ def _surely(changed: Problem, base: Pursuit, watch: Watch | None, deadline: Dead
 
 def _right(sharp: Pursuit, base: Pursuit) -> bool:
     path = sharp.paths[-1]
-    return not at_the_edge(path) and agrees(sharp, base) and surely_held_rightly(path)
+    whole = not at_the_edge(path) and not jumps_at_breaks(path)
+    return whole and agrees(sharp, base) and surely_held_rightly(path)

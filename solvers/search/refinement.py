@@ -101,6 +101,8 @@ def estimate(path: Trajectory) -> Estimate:
 
 BETWEEN = np.linspace(-1.0, 1.0, 15)
 """Places, in the local variable, at which limits are looked at between the points."""
+CLOSE = -np.cos(np.linspace(0.0, np.pi, 65))
+"""The same for bounds of states, which need no formula: closest at the ends, where a state may just reach its bound."""
 
 
 def _add_excess(path: Trajectory, errors: Array) -> float:
@@ -116,13 +118,14 @@ def _add_excess(path: Trajectory, errors: Array) -> float:
     if not bounded.any() and not unequal.any():
         return 0.0
     first, rows = path.program.layout.first[:-1], path.program.rows
-    states = basis(BETWEEN, path.state_modes.shape[1] - 1) @ path.state_modes
-    excess = np.maximum(lower - states, states - upper)[:, :, bounded].max(axis=1, initial=0.0)
+    close = basis(CLOSE, path.state_modes.shape[1] - 1) @ path.state_modes[:, :, bounded]
+    excess = np.maximum(lower[bounded] - close, close - upper[bounded]).max(axis=1, initial=0.0)
     sizes = sizes_of(path)[0][bounded]
     errors[:] = np.maximum(errors, (excess / sizes).max(axis=1, initial=0.0))
     pushes = np.abs(path.bound_multipliers[path.program.layout.inner])[:, bounded]
     gained = float((np.add.reduceat(pushes, first, axis=0) * excess).sum())
     if unequal.any():
+        states = basis(BETWEEN, path.state_modes.shape[1] - 1) @ path.state_modes
         bodies = _bodies_between(path, states)[:, :, unequal]
         sizes = path.program.row_scale[rows.pointwise :][: len(limits)][unequal]
         excess = np.nan_to_num(np.maximum(limits[unequal, 0] - bodies, bodies - limits[unequal, 1]))

@@ -15,7 +15,7 @@ from solvers.search.holding import released, shrunk, wrongly_held
 from solvers.search.joined import joined
 from solvers.search.pursuit import go_on, pursue
 from solvers.search.record import End, Pursuit
-from solvers.search.signals import Switch, limited, switches
+from solvers.search.signals import Switch, jumps_at_breaks, limited, switches
 from solvers.search.structure import (
     Release,
     at_the_edge,
@@ -106,7 +106,7 @@ def with_structure(
     What turns out to be held wrongly is let go, unless an arc that the mesh may have seen as two does as one.  A switch
     that ends at the edge of the room it was given is looked at again from there, and left out if it does so again: the
     arc towards which it runs has no length.  Looked at again is also a structure with which the error hardly falls from
-    one mesh to the next.
+    one mesh to the next, or with which a control leaps within an arc.
     """
     linear = [base.compiled.lowered.controls[index] for index in linear_controls(base.compiled)]
     loose: list[Release] = []
@@ -145,7 +145,7 @@ def with_structure(
                 loose += released(path, wrong)
             continue
         pursuit = now
-        if now.end is End.CONVERGED or not slow(now):
+        if not jumps_at_breaks(path) and (now.end is End.CONVERGED or not slow(now)):
             break
     if pursuit is None or pursuit.end is End.CONVERGED or _chatters(pursuit):
         return pursuit

@@ -99,14 +99,12 @@ LEAP = 0.1
 
 
 def jumps_at_breaks(path: Trajectory) -> bool:
-    """Whether a control that has limits leaps at a break of a plain mesh.
+    """Whether a control that has limits leaps at a break of the mesh that is no place.
 
     That is an accident, and the points do not notice it: but where between the points beside it the control wants to
     switch, and with it the costate, remains open.
     """
     where = path.program.layout
-    if any(place.label.startswith(SWITCH + " ") for place in path.program.compiled.lowered.problem.places):
-        return False
     inner = np.setdiff1d(where.first[1:-1], where.first[where.at_place])
     controls = path.program.compiled.lowered.controls
     limited = [controls.index(signal.quantity) for signal in signals(path) if not signal.state]

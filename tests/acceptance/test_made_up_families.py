@@ -9,6 +9,7 @@ from itertools import pairwise
 
 import numpy as np
 import pytest
+from numpy.polynomial import Polynomial
 from scipy.integrate import quad, solve_ivp
 from scipy.interpolate import make_interp_spline
 
@@ -230,3 +231,114 @@ def _times(speed, sine):
     turns = np.arange(4) * 2 * np.pi
     angles = np.concatenate([np.arcsin(sine) + turns, np.pi - np.arcsin(sine) + turns])
     return sorted(t for t in angles / speed if 0 < t < 1)
+
+
+def polynomial(coefficients, variable):
+    """A polynomial as a formula, by Horner's rule."""
+    text = repr(float(coefficients[-1]))
+    for c in coefficients[-2::-1]:
+        text = f"({text}*{variable} + ({float(c)!r}))"
+    return text
+
+
+CONVEX = {
+    "squares": (
+        "y'^2/2 + y^2/2", lambda y, d: d**2 / 2 + y**2 / 2, "{d2} - {y}", lambda y, d, d2: d2 - y),
+    "powers": (
+        "y'^2/2 + y'^4/4 + y^4/4", lambda y, d: d**2 / 2 + d**4 / 4 + y**4 / 4,
+        "(1 + 3*{d}^2)*{d2} - {y}^3", lambda y, d, d2: (1 + 3 * d**2) * d2 - y**3),
+    "length": (
+        "sqrt(1 + y'^2) + y^2/2", lambda y, d: np.sqrt(1 + d**2) + y**2 / 2,
+        "{d2}/(1 + {d}^2)^1.5 - {y}", lambda y, d, d2: d2 / (1 + d**2) ** 1.5 - y),
+    "hyperbolic": (
+        "cosh(y') + cosh(y)", lambda y, d: np.cosh(d) + np.cosh(y),
+        "cosh({d})*{d2} - sinh({y})", lambda y, d, d2: np.cosh(d) * d2 - np.sinh(y)),
+    "exponential": (
+        "exp(y') + exp(y)", lambda y, d: np.exp(d) + np.exp(y),
+        "exp({d})*{d2} - exp({y})", lambda y, d, d2: np.exp(d) * d2 - np.exp(y)),
+}  # fmt: skip
+"""F(y') + G(y), and the force f = F''(y') y'' - G'(y) with which Euler's equation of F + G + f y holds; each twice."""
+
+
+@pytest.mark.parametrize("seed", range(2))
+@pytest.mark.parametrize("kind", CONVEX)
+def test_a_curve_that_was_chosen_first(kind, seed):
+    """A polynomial of degree four is made the extremal; as all is convex, it is the minimum."""
+    random = np.random.default_rng(seed)
+    text, density, pushed, push = CONVEX[kind]
+    y = Polynomial(random.uniform(-1, 1, 5))
+    start, end = float(random.uniform(-1, 0)), float(random.uniform(0.3, 1.2))
+    d, d2 = y.deriv(), y.deriv(2)
+    force = pushed.format(**{name: polynomial(p.coef, "x") for name, p in (("y", y), ("d", d), ("d2", d2))})
+    found = solved(f"{text} + ({force})*y", [f"y({t!r}) = {float(y(t))!r}" for t in (start, end)], start, end, ["y"])
+
+    def worth(x):
+        return density(y(x), d(x)) + push(y(x), d(x), d2(x)) * y(x)
+
+    value = quad(worth, start, end, epsabs=1e-13, epsrel=1e-13)[0]
+    keeps_its_word(found, value, BEST, known_to=1e-12)
+    at = np.linspace(start, end, 30)
+    size = np.abs(y(at)).max()
+    assert np.abs(found.curve.evaluate("y", at) - y(at)).max() <= (found.curve_error + 1e-14) * size
+
+
+def places_keep_their_word(found, places):
+    """As many switches as were chosen, each as near as its stated error says."""
+    assert len(found.switches) == len(places)
+    for switch, place in zip(found.switches, places, strict=True):
+        assert abs(switch.place - place) <= switch.error <= 1e-3
+
+
+@pytest.mark.parametrize("order", [1, 2, 3])
+@pytest.mark.parametrize("seed", range(4))
+def test_switches_that_were_chosen_first(order, seed):
+    """Least integral of g x where the n-th derivative of x is u, |u| <= m, from rest: by parts that of +-Q u.
+
+    Q = (t - T)^n times all (t - switch), and g its n-th derivative: u is m where +-Q < 0, and -m where it is above.
+    """
+    random = np.random.default_rng(10 * order + seed)
+    end, most = float(random.uniform(1, 4)), float(random.uniform(0.5, 3))
+    switches = end * (np.arange(1, 1 + random.integers(1, 4)) + random.uniform(-0.35, 0.35)) / 4
+    q = float(10 ** random.uniform(-2, 2)) * Polynomial.fromroots([*switches, *[end] * order])
+    whole = q.integ()
+    value = -most * sum(abs(whole(b) - whole(a)) for a, b in pairwise([0.0, *switches, end]))
+    primes = ["'" * k for k in range(order)]
+    found = solved(
+        f"{polynomial(q.deriv(order).coef, 't')}*x", [f"x{prime}(0) = 0" for prime in primes], 0, end,
+        {"x": {}, "u": {"within": [-most, most]}}, "t", dynamics=[f"x{primes[-1]}' = u"],
+    )  # fmt: skip
+    keeps_its_word(found, value, BEST)
+    places_keep_their_word(found, switches)
+
+
+@pytest.mark.parametrize("seed", range(4))
+def test_a_thread_over_a_hump(seed):
+    """Least integral of y'^2 over h (1 - ((x - c)/w)^2): lines that touch it, the hump between; closed form."""
+    random = np.random.default_rng(seed)
+    c, w, h = (float(random.uniform(*room)) for room in ((0.35, 0.65), (0.15, 0.3), (0.2, 3)))
+    hump = h * (1 - (Polynomial([-c, 1]) / w) ** 2)
+    slope = hump.deriv()
+    # a line from (x, 0) touches it at a distance sqrt((c - x)^2 - w^2) from x
+    first, last = float(np.sqrt(c**2 - w**2)), 1 - float(np.sqrt((1 - c) ** 2 - w**2))
+    along = (slope**2).integ()
+    value = slope(first) ** 2 * first + slope(last) ** 2 * (1 - last) + along(last) - along(first)
+    found = solved("y'^2", ["y(0) = 0", "y(1) = 0"], 0, 1, ["y"], constraints=[f"y >= {polynomial(hump.coef, 'x')}"])
+    keeps_its_word(found, value, BEST, known_to=1e-13)
+
+
+@pytest.mark.parametrize("seed", range(4))
+def test_a_limit_of_speed(seed):
+    """Least integral of u^2 for x'' = u from rest to rest under x' <= c: the speed comes to c smoothly; closed form.
+
+    It rises as c (1 - (1 - t/s)^2) up to s = 3 (T - L/c)/2, and falls likewise: the value is 8 c^2/(3 s).
+    """
+    random = np.random.default_rng(seed)
+    end, way = float(random.uniform(1, 4)), float(random.uniform(0.5, 3))
+    limit = float(random.uniform(1.03, 1.45)) * way / end
+    rise = 1.5 * (end - way / limit)
+    found = solved(
+        "u^2", ["x(0) = 0", "v(0) = 0", f"x({end!r}) = {way!r}", f"v({end!r}) = 0"], 0, end,
+        {"x": {}, "v": {"within": [None, limit]}, "u": {}}, "t", dynamics=["x' = v", "v' = u"],
+    )  # fmt: skip
+    keeps_its_word(found, 8 * limit**2 / (3 * rise), BEST)
+    places_keep_their_word(found, [rise, end - rise])
