@@ -111,11 +111,13 @@ def run(
 def left_open(made: Sequence[Check]) -> float:
     """The share of the functional that failed checks leave open: about so much could change where they do not hold.
 
-    Refinement is left out: its figure is what the stated errors say already.
+    Infinite where they leave all of it open: then nothing is known.  Refinement is left out: its figure is what the
+    stated errors say already.
     """
     counted = {*FEASIBLE, *FIRST_ORDER} - {refinement.NAME}
     failed = (check for check in made if check.name in counted and check.status is Status.FAILED)
-    return sum(np.inf if check.figure is None else check.figure for check in failed)
+    share = sum(np.inf if check.figure is None else check.figure for check in failed)
+    return share if share < 1 else np.inf
 
 
 def _budget(path: Trajectory) -> float:

@@ -45,6 +45,7 @@ def test_what_failed_checks_leave_open_counts_but_for_what_errors_say_already():
         [made("motion", Status.FAILED, 0.1), made("free ends", Status.FAILED, 0.2)]
     ) == pytest.approx(0.3)
     assert checks.left_open([made("motion", Status.FAILED)]) == np.inf
+    assert checks.left_open([made("stationarity", Status.FAILED, 1e3)]) == np.inf
 
 
 def test_without_time_nothing_passes(solved):
