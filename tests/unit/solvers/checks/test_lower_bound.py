@@ -87,7 +87,6 @@ def test_no_line_contradicts_the_proof(integrand):
     found = solve(assemble(read(json.dumps(document).encode())))
     assert found.verdict is Verdict.GLOBAL_MINIMUM
     assert not any(check.status is Status.FAILED for check in found.checks)
-    assert any("by itself this says" in check.sentence for check in found.checks)
 
 
 def test_the_gap_is_told_only_where_it_is_proved():
