@@ -56,7 +56,7 @@ def diagnose(pursuit: Pursuit) -> Diagnosis | None:
         sentence = _of_conflicts(pursuit)
     elif pursuit.end is End.UNDEFINED:
         named = "".join(f": {_undefined(finding)}" for finding in findings[:1])
-        sentence = f"A formula has no value, or no derivative, on any of the default guesses{named}."
+        sentence = f"A formula has no value, or no finite derivatives, on any of the default guesses{named}."
         sentence += " A guess or a bound that avoids it helps."
     else:
         sentence = OUT_OF_TIME if pursuit.end is End.TIME else _SENTENCES[pursuit.end]
@@ -71,7 +71,7 @@ def diagnose(pursuit: Pursuit) -> Diagnosis | None:
 
 
 def _undefined(finding: Finding) -> str:
-    """What has no value or no derivative, and where."""
+    """What has no value or no finite derivatives, and where."""
     place = "" if finding.place is None else f" at {finding.place:.6g}"
     return f"'{finding.label}'{place} ({finding.note})"
 

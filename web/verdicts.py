@@ -36,7 +36,7 @@ _REASONS = {
         "No curve was found that meets all conditions",
         "Loosen or drop {one}, or give a guess that comes near to a curve, and solve again.",
     ),
-    "undefined": ("A formula has no value or no derivative where the search begins", ""),
+    "undefined": ("A formula has no value or no finite derivatives where the search begins", ""),
     "out of time": ("The time limit ended the search", ""),
     "out of reach": ("Finer meshes hardly help", ""),
     "stopped": ("Stopped before the end", "Edit the problem or solve it again as it is."),

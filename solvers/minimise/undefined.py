@@ -1,7 +1,8 @@
-"""Where a formula has no value, or no derivative: the smallest sub-expression that fails, the place, what goes into it.
+"""Where a formula has no value, or no finite derivatives: the smallest sub-expression that fails, the place, its parts.
 
-(y'^2)^0.75 is zero where y' is, but its slope is infinite there: the search can begin from such a curve no more than
-from one on which a formula has no value.
+Newton's method takes first and second derivatives, part by part.  (y'^2)^0.75 is zero where y' is, and so is its slope,
+but that of the power by y'^2 is infinite there, and so is its second derivative by y': the search can begin from such a
+curve no more than from one on which a formula has no value.
 """
 
 from __future__ import annotations
@@ -33,7 +34,11 @@ def undefined_places(compiled: Compiled, where: Layout, z: Array) -> tuple[Findi
     problem = compiled.lowered.problem
     given = {problem.independent, "pi", *(constant.name for constant in problem.constants)}
     return _places(compiled, points, value_of, _without_value, "") or _places(
-        compiled, points, value_of, lambda node, values: _without_derivative(node, values, given), "no derivative, "
+        compiled,
+        points,
+        value_of,
+        lambda node, values: _without_derivative(node, values, given),
+        "no finite derivatives by its parts, ",
     )
 
 

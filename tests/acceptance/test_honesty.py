@@ -251,7 +251,7 @@ def test_a_power_without_a_slope_where_the_guess_lies_is_named():
         assert abs(found.value + 1 / 216) <= found.value_error
     else:
         (finding,) = found.diagnosis.findings
-        assert (finding.label, finding.note) == ("(y'^2)^0.75", "no derivative, with y'^2 = 0")
+        assert (finding.label, finding.note) == ("(y'^2)^0.75", "no finite derivatives by its parts, with y'^2 = 0")
         assert "'(y'^2)^0.75'" in found.diagnosis.sentence
 
 
@@ -277,3 +277,10 @@ def test_a_closed_curve_of_least_length_is_a_point(given):
     })  # fmt: skip
     assert found.verdict in GLOBAL
     assert abs(found.value) <= found.value_error + 1e-12
+
+
+def test_a_power_is_solved_from_a_guess_off_its_singular_point():
+    """The same from 0 to 1: as |y'|^(3/2) is convex, the straight line, worth 1 (Jensen)."""
+    found = solved(between(1, 0, 1) | {"integrand": "(y'^2)^0.75"})
+    assert found.verdict in LEAST
+    assert abs(found.value - 1) <= found.value_error <= 1e-6

@@ -76,7 +76,7 @@ def test_what_has_a_value_but_no_derivative_is_found():
     (found,) = findings(shape(**FLAT))
     assert found.label == "(y'^2)^0.75"
     assert found.pointer == "/functional/integrand"
-    assert found.note == "no derivative, with y'^2 = 0"
+    assert found.note == "no finite derivatives by its parts, with y'^2 = 0"
 
 
 def test_a_second_derivative_counts_too():
