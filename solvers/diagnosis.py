@@ -33,6 +33,8 @@ _SENTENCES = {
     "have more corners or layers than `solve.points` allows.",
     End.FAR: "Finer meshes bring the curve nearer to the tolerance so slowly that the time limit would not suffice "
     f"many times over. {KEPT}.",
+    End.FINEST: "Where the curve is not smooth the mesh is as fine as numbers can tell its breaks apart, and the "
+    f"tolerance is not reached. {KEPT}, with the error of its value as it is stated.",
     End.STOPPED: f"The run was stopped. {KEPT}.",
     End.UNBOUNDED: "The value runs away: within the conditions it can be made better without limit, so there is no "
     "optimum. A bound on an unknown or one more condition may be missing.",

@@ -48,7 +48,7 @@ def judge(seek: Seek, checks: Sequence[Check], end: End = End.CONVERGED) -> Verd
         return Verdict.BEST_FOUND
     if not holds(FIRST_ORDER):
         return Verdict.NOT_VERIFIED
-    if status.get(growth.NAME) is Status.FAILED and status.get(convexity.NAME) is not Status.PASSED:
+    if status.get(growth.NAME) is Status.FAILED:
         return Verdict.NOT_VERIFIED
     if seek is Seek.STATIONARY:
         return Verdict.STATIONARY

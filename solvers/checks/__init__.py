@@ -99,13 +99,17 @@ def run(
         (curvature.NAME, of_second_order),
         (convexity.NAME, lambda: convexity.check(original or sampler.problem)),
         (lower_bound.NAME, lambda: lower_bound.check(sampler)),
-        (growth.NAME, lambda: growth.check(sampler)),
+        (growth.NAME, lambda: growth.check(sampler, convex=_passed(made, convexity.NAME))),
         (refinement.NAME, lambda: refinement.check(value_error, size + floor / tolerance, curve_error, tolerance)),
     )
     with np.errstate(all="ignore"):
         for name, one in planned:
             made.append(known[name] if name in known else _made(name, one, deadline))
     return tuple(made)
+
+
+def _passed(made: Sequence[Check], name: str) -> bool:
+    return any(check.name == name and check.status is Status.PASSED for check in made)
 
 
 def left_open(made: Sequence[Check]) -> float:

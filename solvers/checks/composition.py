@@ -92,7 +92,8 @@ def shape_of(tree: Node, leaf: Leaf, unfold: Unfold) -> Shape:
             shape = shape_of(inner, leaf, unfold)
             return Shape(shape.bend, 0.0 if shape.low >= 0 else -INF, 0.0 if shape.high <= 0 else INF)
         case Call(function="sqrt", arguments=(inner,)) if _norm(inner, leaf, unfold):
-            return Shape(Bend.CONVEX, 0.0, INF)
+            shape = shape_of(inner, leaf, unfold)
+            return _call("sqrt", [shape]) if shape.bend is Bend.GIVEN else Shape(Bend.CONVEX, 0.0, INF)
         case Lookup(arguments=arguments):
             return _lookup(tree, [shape_of(part, leaf, unfold) for part in arguments])
         case Call(function=function, arguments=arguments):

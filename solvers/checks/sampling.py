@@ -303,7 +303,7 @@ class Sampler:
         """The mean absolute value of each control (finite also where a slope is not), or its scale."""
         n, m = self.point.states, self.point.controls
         sizes = self.mean(np.abs(self.halves.v[:, n : n + m]))
-        scale = self.path.program.scale[self.path.program.layout.controls[0]]
+        scale = self.path.program.scale[self.path.program.layout.controls].min(axis=0)
         return np.asarray(np.where(sizes > 1e-9 * scale, sizes, scale))
 
     @cached_property

@@ -2,20 +2,22 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from functools import lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
 
 from solvers.minimise.ipopt import Minimum, Outcome
+from solvers.problem import KINK, Problem
 from solvers.search.record import End
-from solvers.transcription.collocation import Family
+from solvers.transcription.collocation import Family, scheme
 from solvers.transcription.functions import Compiled, linear_controls
 from solvers.transcription.layout import Layout
-from solvers.transcription.mesh import Mesh, interval, uniform
+from solvers.transcription.mesh import Mesh, uniform
 from solvers.transcription.natural import at_natural_sizes
 from solvers.transcription.program import Program, transcribe
-from solvers.transcription.scaling import find_row_sizes, find_scales
+from solvers.transcription.scaling import find_row_sizes, find_scales, sizes_along
 
 Array = NDArray[np.float64]
 
@@ -25,16 +27,21 @@ SOLVED = (Outcome.SOLVED, Outcome.ACCEPTABLE)
 
 
 @lru_cache
-def first_mesh(stretches: int, count: int = FIRST_INTERVALS) -> Mesh:
-    """A coarse mesh; its outermost intervals have Gauss points: no end is touched, none is favoured."""
+def first_mesh(stretches: int, count: int = FIRST_INTERVALS, kinks: frozenset[int] = frozenset()) -> Mesh:
+    """A coarse mesh; its outermost intervals have Gauss points: no end is touched, none is favoured.
+
+    Nor is one of the places that are `kinks` of formulas: what vanishes there does so on both sides.
+    """
     each = count if stretches == 1 else max(count // stretches, 2 if stretches <= count else 1)
-    mesh = uniform(stretches, each, FIRST_DEGREE)
-    first, *inner, last = mesh.intervals
-    return Mesh((
-        interval(first.stretch, 0.0, first.width, Family.GAUSS, FIRST_DEGREE),
-        *inner,
-        interval(last.stretch, last.start, 1.0, Family.GAUSS, FIRST_DEGREE),
-    ))  # fmt: skip
+    mesh = uniform(stretches, each, FIRST_DEGREE).intervals
+    apart = {0, *(each * place - 1 for place in (*kinks, stretches))}
+    gauss = scheme(Family.GAUSS, FIRST_DEGREE)
+    return Mesh(tuple(replace(old, scheme=gauss) if index in apart else old for index, old in enumerate(mesh)))
+
+
+def kinks_of(problem: Problem) -> frozenset[int]:
+    """Which places are kinks of formulas."""
+    return frozenset(k for k, place in enumerate(problem.places) if place.label.startswith(KINK + " "))
 
 
 def make_program(compiled: Compiled, mesh: Mesh, where: Layout, z: Array, before: Program | None = None) -> Program:
@@ -43,7 +50,7 @@ def make_program(compiled: Compiled, mesh: Mesh, where: Layout, z: Array, before
         z = at_natural_sizes(compiled, mesh, where, z)
     scales = find_scales(compiled, where, z, None if before is None else before.scales)
     rows = find_row_sizes(compiled, where, scales, z, 0.0 if before is None else abs(before.value_scale))
-    return transcribe(compiled, mesh, where, scales, rows)
+    return transcribe(compiled, mesh, where, scales, rows, sizes_along(compiled, where, scales, z))
 
 
 def loose(compiled: Compiled) -> bool:

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from solvers.minimise.ipopt import LEAST_SQUARES_MULTIPLIERS, Minimum, Outcome, Start
 from solvers.minimise.undefined import undefined_places
 from solvers.problem import Seek
-from solvers.search.attempt import FIRST_INTERVALS, SOLVED, end_of, first_mesh, loose, make_program
+from solvers.search.attempt import FIRST_INTERVALS, SOLVED, end_of, first_mesh, kinks_of, loose, make_program
 from solvers.search.conflict import VIOLATED, curve_of_least_violation, least_violation_of
 from solvers.search.contradiction import contradictory
 from solvers.search.effort import Minimiser
@@ -56,11 +56,11 @@ ATTEMPTS: tuple[tuple[int, int, dict[str, Any]], ...] = (
 def begin(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Program, Minimum] | None:
     """The first mesh that is solved, from the first guess and settings that lead somewhere."""
     compiled = pursuit.compiled
-    stretches = len(pursuit.problem.places) - 1
+    stretches, kinks = len(pursuit.problem.places) - 1, kinks_of(pursuit.problem)
     outcomes: list[Outcome] = []
     astray = conflict = False
     for attempt, (most, times, options) in enumerate(ATTEMPTS):
-        mesh = first_mesh(stretches, times * FIRST_INTERVALS)
+        mesh = first_mesh(stretches, times * FIRST_INTERVALS, kinks)
         where = layout(compiled, mesh)
         for guess in islice(guesses(compiled, mesh, where), most):
             program = make_program(compiled, mesh, where, guess.z)
@@ -118,7 +118,7 @@ def _straight(program: Program, start: Start, minimise_: Minimiser) -> Minimum |
 
 def begin_at(pursuit: Pursuit, minimise_: Minimiser, start: Trajectory) -> tuple[Program, Minimum] | None:
     """The first mesh, from a trajectory of a related form of the problem that may be far from any end."""
-    mesh = first_mesh(len(pursuit.problem.places) - 1)
+    mesh = first_mesh(len(pursuit.problem.places) - 1, kinks=kinks_of(pursuit.problem))
     where = layout(pursuit.compiled, mesh)
     z = related(start, pursuit.compiled, mesh, where)
     pursuit.first = make_program(pursuit.compiled, mesh, where, z)

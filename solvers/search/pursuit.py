@@ -97,9 +97,10 @@ def _go_on(pursuit: Pursuit, minimise_: Minimiser, meshes: int) -> None:
     pursuit.end = End.SETTLED
     for _ in range(meshes):
         path, found = pursuit.paths[-1], pursuit.estimates[-1]
-        better = refinement.refine(path, found, AIM * options.tolerance)
+        better = _better(pursuit)
         if better == path.program.mesh:
-            better = refinement.finer(better)
+            pursuit.end = End.SETTLED if pursuit.value_met else End.FINEST
+            return
         mesh = _limited(better, path.program.mesh, found, options.points)
         if mesh is None:
             pursuit.end = End.POINTS
@@ -121,6 +122,18 @@ def _go_on(pursuit: Pursuit, minimise_: Minimiser, meshes: int) -> None:
         if end is not None:
             pursuit.end = end
             return
+
+
+def _better(pursuit: Pursuit) -> Mesh:
+    """The mesh that follows: where local errors are small all along, a finer one, to see what is left to gain.
+
+    Where they are small and the value's is not, it is the worst of them that have to become smaller.
+    """
+    path, found, aim = pursuit.paths[-1], pursuit.estimates[-1], AIM * pursuit.problem.options.tolerance
+    better = refinement.refine(path, found, aim)
+    if better == path.program.mesh and len(pursuit.paths) > 1 and not pursuit.value_met:
+        better = refinement.refine(path, found, AIM * found.worst)
+    return refinement.finer(better) if better == path.program.mesh and found.worst <= aim else better
 
 
 def _with_corners(mesh: Mesh, path: Trajectory, points: int) -> Mesh:
@@ -211,9 +224,8 @@ def _limited(mesh: Mesh, old: Mesh, found: refinement.Estimate, points: int) -> 
         return None
     groups: list[list[Any]] = []
     for piece in old.intervals:
-        end = piece.start + piece.width + 1e-14
         same = (i for i in mesh.intervals if i.stretch == piece.stretch)
-        groups.append([i for i in same if piece.start - 1e-15 <= i.start and i.start + i.width <= end])
+        groups.append([i for i in same if 0 < i.start + i.width / 2 - piece.start < piece.width])
     chosen: list[list[Any]] = [[piece] for piece in old.intervals]
     total = old.points
     for k in np.argsort(-found.errors):

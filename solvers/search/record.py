@@ -22,6 +22,7 @@ class End(Enum):
     CONVERGED = "converged"
     SETTLED = "settled"  # the value and the states stand still, controls do not sharpen any more
     POINTS = "points limit"
+    FINEST = "finest mesh"  # numbers do not tell breaks apart any more
     TIME = "out of time"
     FAR = "out of reach"  # the error falls too slowly for any time like the limit
     STOPPED = "stopped"

@@ -38,15 +38,23 @@ LEAST_HALF = 5
 NOISE = 1e-6
 """An error of a control, relative to that of a state, below which the control tells nothing."""
 NARROWEST = 1e-11
-"""Least width of an interval, relative to the whole."""
+"""Least width of an interval, relative to the whole, and to what is added up to reach it: else breaks fall together."""
+LEAST_WIDTH = 1e-30
+"""... and where numbers tell breaks apart, as beside an end at zero: there a singular end may need ever less."""
 END_DEGREE = 6
 """Least degree beside such a cut: beyond it the curve is smooth."""
+STEADY = 0.9
+"""How much less a state rises towards an end, at the most, over the share of the way that is cut off at once."""
 SLIVER = 0.3
 """How narrow an interval is, relative to its neighbour, that was cut off that for the trouble at its end ..."""
 GOOD = 0.1
 """... and its error, relative to that neighbour's, where the trouble was elsewhere."""
 END_CUT = 0.12
-"""Where an interval is cut whose trouble sits at one of its ends."""
+"""Where an interval is cut whose trouble sits at one of its ends ..."""
+MOST_CUTS = 4
+"""... and how often at most, at an end of a stretch where it has been cut before: there the trouble stays ..."""
+FOREMOST = 0.1
+"""... and is, with such a share of the largest error, what stands in the way."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -192,8 +200,8 @@ def refine(path: Trajectory, found: Estimate, tolerance: float) -> Mesh:
     is known from a few, and halves of the degree that they will need.  Else other meshes follow anyway.
     """
     mesh = path.program.mesh
-    widths = np.diff(path.breaks) / (path.breaks[-1] - path.breaks[0])
-    falls = _falls(found)
+    narrow = _too_narrow(path)
+    each = falls(found)
     smooth = smooth_all_along(found, tolerance)
     along = any(contact.state for contact in contacts(path))  # there the curve bends wherever its limit does
     pieces: list[Interval] = []
@@ -203,16 +211,47 @@ def refine(path: Trajectory, found: Estimate, tolerance: float) -> Mesh:
         else:
             missing = float(np.log10(found.errors[k] / tolerance))
             good = _good_beside(mesh, found.errors, k) if along else (False, False)
-            pieces.extend(_replace(old, missing, falls[k], found.bends[k], float(widths[k]), smooth, good))
+            often = 0 if narrow[k] else _graded(path, k) if found.errors[k] > FOREMOST * found.worst else 1
+            pieces.extend(_replace(old, missing, each[k], found.bends[k], often, smooth, good))
     return Mesh(tuple(pieces))
+
+
+def _too_narrow(path: Trajectory) -> NDArray[np.bool_]:
+    """Which intervals are not cut any more."""
+    mesh, widths = path.program.mesh, np.diff(path.breaks)
+    starts, ends = path.places[mesh.stretch], path.places[mesh.stretch + 1]
+    summed = np.abs(starts) + (mesh.starts + mesh.widths) * np.abs(ends - starts)
+    whole = abs(float(path.breaks[-1] - path.breaks[0]))
+    return np.asarray((widths < NARROWEST * np.minimum(whole, summed)) | (widths < LEAST_WIDTH * whole))
+
+
+def _graded(path: Trajectory, k: int) -> int:
+    """How often an interval is cut whose trouble sits at its end: as often as it was, where its stretch ends there.
+
+    How often it was is told by how narrow it is, relative to an even mesh.  Only where that leads somewhere: towards an
+    integrable end states rise the less the narrower the interval is, towards a jump they do not.
+    """
+    mesh = path.program.mesh
+    own = np.flatnonzero(mesh.stretch == mesh.stretch[k])
+    often = int(np.clip(np.log(mesh.widths[k] * len(own)) / np.log(END_CUT), 1, MOST_CUTS))
+    if k not in own[[0, -1]] or often == 1:
+        return 1
+    nodes, breaks = (path.nodes, path.breaks) if k == own[0] else (path.nodes[::-1], path.breaks[::-1])
+    end = k if k == own[0] else len(breaks) - 2 - k
+    distances = np.abs(breaks - breaks[end])[end:]
+    far = min(end + int(np.searchsorted(distances, distances[1] / END_CUT)), len(breaks) - 1)
+    near, beyond = (np.abs(nodes[j] - nodes[end]) / sizes_of(path)[0] for j in (end + 1, far))
+    worst = int(np.argmax(near))
+    return often if near[worst] < STEADY * beyond[worst] else 1
 
 
 def smooth_all_along(found: Estimate, tolerance: float) -> bool:
     """Whether coefficients fall fast on all intervals but those that are good enough anyway."""
-    return all(fall >= SMOOTH or error <= tolerance for fall, error in zip(_falls(found), found.errors, strict=True))
+    return all(fall >= SMOOTH or error <= tolerance for fall, error in zip(falls(found), found.errors, strict=True))
 
 
-def _falls(found: Estimate) -> list[float]:
+def falls(found: Estimate) -> list[float]:
+    """How fast coefficients fall on every interval, in powers of ten per degree."""
     return [max(_fall(shape), 1e-3) for shape in found.shapes]
 
 
@@ -228,18 +267,19 @@ def _good_beside(mesh: Mesh, errors: Array, k: int) -> tuple[bool, bool]:
 
 
 def _replace(
-    old: Interval, missing: float, fall: float, bends: Array, width: float, smooth: bool, good: tuple[bool, bool]
+    old: Interval, missing: float, fall: float, bends: Array, often: int, smooth: bool, good: tuple[bool, bool]
 ) -> Iterator[Interval]:
-    """One interval by better ones, to gain so many powers of ten."""
+    """One interval by better ones, to gain so many powers of ten; `often` it may be cut towards one of its ends."""
     family, degree = old.scheme.family, old.scheme.degree
     start, end = old.start, old.start + old.width
     wanted = _degree(degree, missing, fall, smooth)
     if fall >= SMOOTH and wanted <= HIGHEST_DEGREE:
         yield interval(old.stretch, start, end, family, wanted)
         return
-    if width < NARROWEST:
+    if not often:
         yield old
         return
+    at_end = False
     if fall >= SMOOTH:  # smooth but far from resolved: halves of a higher degree
         cuts = [0.5]
         needed = _degree(degree, missing - HALVED * degree, fall + HALVED, smooth) if smooth else LEAST_HALF
@@ -247,15 +287,14 @@ def _replace(
     else:
         bend = _bend(bends)
         if (good[0] and bend < END_CUT) or (good[1] and bend > 1 - END_CUT):
-            cuts = [0.5]
+            cuts, at_end = [0.5], True
         elif bend < END_CUT:
-            cuts = [END_CUT]
+            cuts, at_end = [END_CUT**j for j in range(often, 0, -1)], True
         elif bend > 1 - END_CUT:
-            cuts = [1 - END_CUT]
+            cuts, at_end = [1 - END_CUT**j for j in range(1, often + 1)], True
         else:
             cuts = [max(bend - 0.15, bend / 2), min(bend + 0.15, (1 + bend) / 2)]
     edges = [start, *(start + cut * old.width for cut in cuts), end]
-    at_end = len(cuts) == 1 and fall < SMOOTH
     if at_end:
         degree = max(degree, END_DEGREE)
     for left, right in pairwise(edges):

@@ -9,6 +9,7 @@ import numpy as np
 from solvers.minimise.ipopt import FLOOR
 from solvers.search import refinement
 from solvers.search.record import End, Pursuit
+from solvers.search.unresolved import unresolved
 from solvers.solution import Finding
 from solvers.transcription.lowering import primed
 from solvers.transcription.trajectory import Trajectory, distance
@@ -17,6 +18,10 @@ CURVE_ROOM = 100.0
 """How much more than the tolerance the curve may still have moved: a switch that hardly matters moves freely."""
 LEAST_GAIN = 0.005
 """How much of the last change of the value counts as its error at the least, however much the mesh has improved."""
+SLOWEST = 0.95
+"""The slowest fall of the changes from mesh to mesh that is counted on ..."""
+SERIES = 1.25
+"""... and how much more than such a series adds up to its rest may be, as the factor itself grows."""
 ROOT = 3
 """The value may grow as fast as the third root of what is missing of the conditions, where no curve reaches beyond."""
 TORN_MESHES = 4
@@ -38,20 +43,31 @@ TIMES_OVER = 30.0
 
 
 def estimate_errors(pursuit: Pursuit, found: refinement.Estimate) -> None:
-    """Errors of value and curve from the last two meshes: their difference, and how much the mesh has improved since.
+    """Errors of value and curve from the last meshes: their difference, and how much the mesh has improved since.
 
     The difference alone is the error of the mesh before; local errors that fell by a factor f let the value's error
-    fall at least by f.  What the curve gains by leaving limits between the points is seen on one mesh alone, and so is
-    what it gains by what the minimiser left of the conditions.
+    fall at least by f.  Where they hardly fall, and the changes from mesh to mesh hardly either, all that are to come
+    add up like a geometric series (Aitken, 1926; from memory).  What the curve gains by leaving limits between the
+    points is seen on one mesh alone, and so is what it gains by what the minimiser left of the conditions, and what is
+    open where it is not resolved.
     """
     now, before = pursuit.paths[-1], pursuit.paths[-2]
     last = pursuit.steps[-2].error or 0.0
     gain = float(np.clip(found.worst / last, LEAST_GAIN, 1.0)) if last > 0 else 1.0
     size = max(abs(now.value), abs(now.program.value_scale))
     change = abs(now.value - before.value)
-    own = 2 * gain * change + size * found.worst**2 + FLOOR * size
-    pursuit.value_error = own + found.gained + worth_of_misses(now)
+    rate = min(gain, _rate(pursuit, change))
+    own = max(2 * gain, SERIES * rate / (1 - rate)) * change + size * found.worst**2 + FLOOR * size
+    pursuit.value_error = own + unresolved(now, found) + found.gained + worth_of_misses(now)
     pursuit.curve_error = gain * distance(now, before) + found.worst
+
+
+def _rate(pursuit: Pursuit, change: float) -> float:
+    """By which factor the value's changes fall from mesh to mesh; the slowest where only two meshes are known."""
+    if len(pursuit.paths) < 3:
+        return SLOWEST
+    before = abs(pursuit.paths[-2].value - pursuit.paths[-3].value)
+    return min(change / before, SLOWEST) if before > 0 else SLOWEST
 
 
 def worth_of_misses(path: Trajectory) -> float:

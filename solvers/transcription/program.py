@@ -49,10 +49,19 @@ class Program(Placement):
         return not (np.isfinite(bounds).any() or (self.row_lower < self.row_upper).any())
 
 
-def transcribe(compiled: Compiled, mesh: Mesh, where: Layout, scales: Scales, row_sizes: RowSizes) -> Program:
-    """Put a compiled problem on a mesh with its layout."""
+def transcribe(
+    compiled: Compiled,
+    mesh: Mesh,
+    where: Layout,
+    scales: Scales,
+    row_sizes: RowSizes,
+    controls: Array | None = None,
+) -> Program:
+    """Put a compiled problem on a mesh with its layout; `controls` are their sizes point by point where they differ."""
     rows = row_order(compiled, mesh, where)
     scale = spread(compiled, where, scales)
+    if controls is not None:
+        scale[where.controls] = controls
     row_scale = _row_scale(compiled, mesh, where, scales, row_sizes)
     sign = -1.0 if compiled.lowered.problem.seek is Seek.MAXIMUM else 1.0
     lower, upper, row_lower, row_upper = limits(compiled, where, rows)

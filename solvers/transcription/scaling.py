@@ -190,14 +190,36 @@ def _without_spikes(where: Layout, z: Array, scales: Array) -> tuple[Array, Arra
     A slope that is not bounded would else blow up what counts as a noticeable change of the functional.
     """
     controls = z[where.controls]
-    peaks = np.abs(controls).max(axis=0, initial=0.0)
-    means = where.measures @ np.abs(controls) / max(float(where.measures.sum()), 1e-300)
-    spikes = (means > 0) & (means < SPIKE * peaks)
+    means, spikes = _spikes(where, z)
     if not spikes.any():
         return None
     calm = z.copy()
     calm[where.controls] = np.where(spikes, np.copysign(means, controls), controls)
     return calm, np.where(spikes, np.minimum(means, scales), scales)
+
+
+def sizes_along(compiled: Compiled, where: Layout, scales: Scales, z: Array) -> Array:
+    """The size of every control at every point: of one without limits that is large in a spike only, its interval's.
+
+    With the size of the spike for all, the equations of all the other points would be known to rounding times it only:
+    beside a singular end a slope may be as large as the end is resolved.
+    """
+    sizes = np.tile(scales.controls, (len(where.fractions), 1))
+    means, spikes = _spikes(where, z)
+    lower, upper = quantity_bounds(compiled)[2:]
+    spikes = spikes & np.isinf(lower) & np.isinf(upper)
+    if spikes.any():
+        largest = np.maximum.reduceat(np.abs(z[where.controls]), where.first[:-1], axis=0)
+        largest = np.repeat(largest, np.diff(where.first), axis=0)
+        sizes = np.where(spikes, np.clip(largest, means, np.maximum(means, scales.controls)), sizes)
+    return sizes
+
+
+def _spikes(where: Layout, z: Array) -> tuple[Array, NDArray[np.bool_]]:
+    """The mean absolute value of every control, and which controls are large in a spike only."""
+    controls = np.abs(z[where.controls])
+    means = where.measures @ controls / max(float(where.measures.sum()), 1e-300)
+    return means, (means > 0) & (means < SPIKE * controls.max(axis=0, initial=0.0))
 
 
 def _row_sums(numbers: Array, rows: list[int], columns: list[int], outputs: int, sizes: Array) -> Array:

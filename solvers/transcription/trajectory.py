@@ -256,7 +256,8 @@ def _draw(z: Array, path: Trajectory, where: Layout, breaks: Array, points: Arra
 
 def at_points(breaks: Array, modes: Array, places: Array) -> Array:
     """Piecewise polynomials at places of another mesh (len(places) x components)."""
-    rounding = 4 * np.finfo(float).eps * np.abs(breaks).max()  # a point at a right end stays with what ends there
+    summed = np.maximum(np.abs(places), abs(breaks[0]))  # of what is added up to reach a place
+    rounding = 4 * np.finfo(float).eps * summed  # a point at a right end stays with what ends there
     owner = np.clip(np.searchsorted(breaks, places - rounding, side="left") - 1, 0, len(modes) - 1)
     left, right = breaks[owner], breaks[owner + 1]
     local = np.clip((2 * places - left - right) / (right - left), -1.0, 1.0)

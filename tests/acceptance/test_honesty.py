@@ -91,7 +91,27 @@ def loaded_power(power, load):
     return between(1) | {"integrand": f"abs(y')^{power} - {load}*y"}, value, GLOBAL
 
 
+def singular_end(a):
+    """min of the integral of x^a y'^2: x^a y' is constant, y = x^(1-a), the value 1 - a."""
+    return between(1, 0, 1) | {"integrand": f"x^{a!r}*y'^2"}, 1 - a, GLOBAL if a < 0.85 else GLOBAL | OPEN
+
+
 CASES = {
+    "an end that is hardly singular": singular_end(0.3),
+    "a singular end": singular_end(0.5),
+    "a more singular one": singular_end(0.6),
+    "one that is two thirds": singular_end(2 / 3),
+    "a singular end that goes on and on": singular_end(0.8),
+    "one that nearly has no value": singular_end(0.9),
+    # (1 - x^2)^(1/2) y' is constant, y = (2/pi) asin(x)
+    "two singular ends": (between(1, -1, 1, -1) | {"integrand": "sqrt(1 - x^2)*y'^2"}, 4 / pi, GLOBAL),
+    "a singular end where numbers are coarse": (
+        between(4, 0, 1, 3) | {"integrand": "(x - 3)^(2/3)*y'^2"}, 1 / 3, GLOBAL | OPEN),
+    # y' = c |x - 0.4|^-a with c = (1 - a)/(0.4^(1-a) + 0.6^(1-a)); the value is c
+    "a singular place within": (
+        between(1, 0, 1) | {"integrand": "abs(x - 0.4)^0.6*y'^2"}, 0.4 / (0.4**0.4 + 0.6**0.4), GLOBAL),
+    # y = log(x/e)/log(1/e) beyond e costs 1/log(1/e): 0 is approached and not attained
+    "one that has none": (between(1, 0, 1) | {"integrand": "x*y'^2"}, 0.0, NONE | OPEN),
     "a power between one and two": loaded_power(1.5, 1),
     "under a larger load": loaded_power(1.5, 4),
     "a power near one": loaded_power(1.3, 1),

@@ -88,6 +88,10 @@ def test_limits_say_which_setting_to_raise(end, advice):
     assert f"`{advice}`" in diagnose(pursuit(end)).sentence
 
 
+def test_the_finest_mesh_is_said_to_be_the_finest():
+    assert "as fine as numbers can tell" in diagnose(pursuit(End.FINEST)).sentence
+
+
 def mesh(error, seconds=0.5):
     return MeshStep(8, 32, 4, 4, 1.0, error, 20, seconds)
 

@@ -45,7 +45,7 @@ def found(**statuses):
         (Seek.MAXIMUM, {"Weierstrass": F}, Verdict.NOT_A_MAXIMUM),
         (Seek.MINIMUM, {"corners": F}, Verdict.NOT_VERIFIED),
         (Seek.MINIMUM, {"slope_growth": F}, Verdict.NOT_VERIFIED),
-        (Seek.MINIMUM, {"slope_growth": F, "convexity": P}, Verdict.GLOBAL_MINIMUM),
+        (Seek.MINIMUM, {"slope_growth": F, "convexity": P}, Verdict.NOT_VERIFIED),
         (Seek.MINIMUM, {"lower_bound": P}, Verdict.GLOBAL_MINIMUM),
         (Seek.MAXIMUM, {"lower_bound": P, "refinement": F, "slope_growth": F}, Verdict.GLOBAL_MAXIMUM),
         (Seek.MINIMUM, {"lower_bound": P, "motion": F}, Verdict.NOT_VERIFIED),

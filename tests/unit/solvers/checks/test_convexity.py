@@ -19,7 +19,7 @@ CONVEX = [
     "k*y'^2 - c*exp(y + z') - log(y)", "max(y', z', 0)^2", "hypot(y', z')", "sqrt((y'^2 + z'^2)/(x + 1))",
     "1/y + z'^2 + y'^2", "y^1.5 + y'^2 + z'^2", "cosh(y' - z') + y*sin(x)", "(y'^2 + z'^2)/k",
     "sqrt(y'^2 + (z' - 2*y)^2 + 3)", "k^(y' + z') + y'^2", "y'^2 + z'^2 - sqrt(y)", "(1 + y'^2 + z'^2)^2",
-    "-min(y', -z')",
+    "-min(y', -z')", "sqrt(x)*y'^2 + z'^2", "sqrt(1 - x^2)*(y' - z)^2 + z'^2",
 ]  # fmt: skip
 
 NOT_CONVEX = [

@@ -31,6 +31,13 @@ def test_without_the_independent_variable_there_is_no_gap(solved, examine):
     assert "grows without bound" in check.sentence
 
 
+def test_a_convex_problem_has_no_gap_either(solved):
+    """x^(1/2) y'^2: y = x^(1/2) is an extremal with finite costates, so that its tangents bound all other curves."""
+    sampler = Sampler(solved({**GAP, "functional": {"seek": "minimum", "integrand": "sqrt(x)*y'^2"}}))
+    assert growth.check(sampler).status is Status.FAILED
+    assert growth.check(sampler, convex=True).status is Status.PASSED
+
+
 def test_the_power_is_that_of_the_closed_form(solved):
     """y' = (3/4) x^(-1/4)."""
     power, place = growth.growth(Sampler(solved(NO_GAP)), 0)

@@ -65,6 +65,14 @@ def test_the_first_mesh_touches_neither_end():
         assert mesh.degrees() == (FIRST_DEGREE, FIRST_DEGREE)
 
 
+def test_nor_kinks_between_the_ends():
+    """Their points would be where the integrand vanishes: a jump there would cost nothing."""
+    mesh = first_mesh(3, kinks=frozenset({2}))
+    gauss = [k for k, piece in enumerate(mesh.intervals) if piece.scheme.family is Family.GAUSS]
+    assert [mesh.stretch[k] for k in gauss] == [0, 1, 2]
+    assert mesh.intervals[gauss[1]].start + mesh.intervals[gauss[1]].width == pytest.approx(1)
+
+
 def test_signs_of_life_are_in_order():
     signs = []
     pursuit = pursue(stated(**CORNER), lambda sign: signs.append(sign) or False, far(), meshes=4)

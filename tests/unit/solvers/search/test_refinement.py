@@ -5,7 +5,16 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
-from solvers.search.refinement import HIGHEST_DEGREE, NARROWEST, estimate, finer, refine
+from solvers.search.refinement import (
+    END_CUT,
+    HIGHEST_DEGREE,
+    LEAST_WIDTH,
+    MOST_CUTS,
+    NARROWEST,
+    estimate,
+    finer,
+    refine,
+)
 from solvers.transcription.collocation import Family
 from solvers.transcription.mesh import Mesh, interval, uniform
 from solvers.transcription.trajectory import curve
@@ -94,9 +103,19 @@ def test_a_singular_end_is_graded():
 
 
 def test_nothing_is_cut_below_the_narrowest():
-    mesh = refined(COARSE, np.sqrt, lambda t: 0.5 / np.sqrt(np.maximum(t, 1e-300)), 16, tolerance=1e-13)
-    assert np.diff(breaks_of(mesh)).min() > 0.1 * NARROWEST
+    """sqrt(1 - t): beside 1 numbers do not tell breaks apart any more."""
+    mesh = refined(COARSE, lambda t: np.sqrt(1 - t), lambda t: -0.5 / np.sqrt(np.maximum(1 - t, 1e-300)), 16, 1e-13)
+    assert np.diff(breaks_of(mesh)).min() > END_CUT**MOST_CUTS * NARROWEST
     assert mesh.degrees()[1] <= HIGHEST_DEGREE
+
+
+def test_beside_zero_cuts_go_on():
+    """t^(1/8), to nine digits: that takes an interval of less than 1e-48."""
+    mesh = refined(COARSE, lambda t: t**0.125, lambda t: 0.125 * np.maximum(t, 1e-300) ** -0.875, 16, 1e-6)
+    widths = np.diff(breaks_of(mesh))
+    assert END_CUT**MOST_CUTS * LEAST_WIDTH < widths.min() < LEAST_WIDTH
+    assert np.all(widths[1:] >= 0.99 * widths[:-1])
+    assert covers(mesh)
 
 
 def test_points_that_touch_no_end_stay_at_the_ends():

@@ -1,12 +1,15 @@
 """Scaling: no result depends on units, on the origin or direction of the independent variable, or on any order."""
 
+from itertools import pairwise
+
 import numpy as np
 import pytest
 
 from solvers.solve import solve
+from solvers.transcription.collocation import Family
 from solvers.transcription.layout import layout
-from solvers.transcription.mesh import uniform
-from solvers.transcription.scaling import FAINT, find_row_sizes, find_scales
+from solvers.transcription.mesh import Mesh, interval, uniform
+from solvers.transcription.scaling import FAINT, find_row_sizes, find_scales, sizes_along
 from tests.unit.solvers.problems import compiled, shape, solved_on, start_of, stated
 
 MESH = uniform(1, 6, 6)
@@ -238,3 +241,16 @@ def test_a_functional_that_vanishes_keeps_a_size():
     alone = find_row_sizes(functions, where, scales, z).value
     assert alone > 2
     assert find_row_sizes(functions, where, scales, z, 2.0).value == alone
+
+
+def test_a_spike_is_as_large_as_each_interval_has_it():
+    """u = 1e6 up to a thousandth of the range and 1 beyond, so 1e3 in the mean; with limits it keeps one size."""
+    edges = [0.0, 1e-3, 0.5, 1.0]
+    mesh = Mesh(tuple(interval(0, left, right, Family.RADAU, 4) for left, right in pairwise(edges)))
+    for limits, beyond in (({}, 1e3), ({"within": [-2e6, 2e6]}, 1e6)):
+        functions = compiled(stated(unknowns={"x": {}, "u": limits}))
+        where = layout(functions, mesh)
+        z = np.ones(where.size)
+        z[where.controls[:4]] = 1e6
+        along = sizes_along(functions, where, find_scales(functions, where, z), z)[:, 0]
+        np.testing.assert_allclose(along, np.repeat([1e6, beyond], [4, 8]), rtol=2e-3)

@@ -13,7 +13,7 @@ from solvers.minimise.ipopt import Minimum, Outcome, Start, minimise
 from solvers.transcription.collocation import Family
 from solvers.transcription.layout import layout
 from solvers.transcription.mesh import Mesh, interval, uniform
-from solvers.transcription.trajectory import carry, costate_curve, curve, distance, related, trajectory
+from solvers.transcription.trajectory import at_points, carry, costate_curve, curve, distance, related, trajectory
 from tests.unit.solvers.problems import (
     LEAST_TIME,
     compiled,
@@ -223,3 +223,13 @@ def test_distance_is_relative_to_the_size_of_each_state():
     twice = trajectory(path.program, replace(minimum, z=np.where(np.isin(np.arange(len(minimum.z)),
                        path.program.layout.places), 1.0, 2.0) * minimum.z))  # fmt: skip
     assert distance(twice, path) == pytest.approx(0.5, rel=1e-12)
+
+
+def test_points_of_tiny_intervals_are_found_in_them():
+    """A constant for each of intervals that shrink by 1e5 towards zero."""
+    breaks = np.array([0.0, 1e-25, 1e-20, 1e-15, 1e-10, 1.0])
+    values = np.arange(5.0)
+    middles = (breaks[1:] + breaks[:-1]) / 2
+    np.testing.assert_array_equal(at_points(breaks, values[:, None, None], middles)[:, 0], values)
+    ends = at_points(breaks, values[:, None, None], breaks[1:] * (1 + 1e-16))
+    np.testing.assert_array_equal(ends[:, 0], values)
