@@ -49,8 +49,8 @@ SPIKE = 0.01
 SHRINKAGE = 1e-3
 """How much smaller a size may become from one mesh to the next: what tends to zero must not be blown up."""
 
-ROUNDING = 1e-13
-"""What is smaller than this, relative to its size before, is zero: its size is left as it was."""
+ROUNDING = 1e-10
+"""What is smaller than this, relative to its size before, is zero to the minimiser: its size is left as it was."""
 
 FAINT = 1e-3
 """The least size of a derivative, relative to that of what it is the derivative of over the whole range: where a
