@@ -26,6 +26,9 @@ Array = NDArray[np.float64]
 STEPS = 80
 TOLERANCE = 1e-11
 SMALLEST_STEP = 2.0**-20
+CRAWLING = 20
+CRAWLED = 0.95
+"""So many steps that leave more than this of the residual lead nowhere: it is least nearby, but not zero."""
 STRAIGHT = 6
 FALL = 0.2
 """Whole steps that are tried, and how far each must let the residual fall."""
@@ -45,6 +48,7 @@ def stationary_point(program: Program, start: Start, watch: Callable[[Iterate], 
         multipliers[system.equal] = system.least_squares_multipliers(z)
     outcome, count = Outcome.FAILED, 0
     residual = system.residual(z, multipliers)
+    lengths: list[float] = []
     for count in range(STEPS):
         size = float(np.abs(residual).max(initial=0.0))
         if watch(Iterate(count, system.value(z), float(np.abs(residual[len(system.free) :]).max(initial=0.0)))):
@@ -57,10 +61,15 @@ def stationary_point(program: Program, start: Start, watch: Callable[[Iterate], 
         if step is None:
             break
         share, here = 1.0, float(np.linalg.norm(residual))
+        lengths.append(here)
+        if count >= CRAWLING and here > CRAWLED * lengths[-1 - CRAWLING]:
+            break
         while share > SMALLEST_STEP:
             moved, changed = system.moved(z, multipliers, step, share)
-            after = system.residual(moved, changed)
-            if np.all(np.isfinite(after)) and np.linalg.norm(after) < (1 - 1e-4 * share) * here:
+            with np.errstate(over="ignore"):  # a step that is too long may lead anywhere
+                after = system.residual(moved, changed)
+                falls = np.linalg.norm(after) < (1 - 1e-4 * share) * here
+            if falls:
                 break
             share /= 2
         else:

@@ -71,3 +71,9 @@ def end_of(minimum: Minimum) -> End:
     That there is no curve, or no optimum, no minimiser can know: it only saw none nearby.
     """
     return {Outcome.TIME: End.TIME, Outcome.STOPPED: End.STOPPED}.get(minimum.outcome, End.FAILED)
+
+
+def runs_away(minimum: Minimum) -> bool:
+    """Whether the value has grown beyond all sizes of the problem."""
+    diverged = minimum.outcome is Outcome.UNBOUNDED
+    return diverged or not np.isfinite(minimum.value) or minimum.value < -1e6

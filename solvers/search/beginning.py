@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from solvers.minimise.ipopt import LEAST_SQUARES_MULTIPLIERS, Minimum, Outcome, Start
 from solvers.minimise.undefined import undefined_places
 from solvers.problem import Seek
-from solvers.search.attempt import FIRST_INTERVALS, SOLVED, end_of, first_mesh, kinks_of, loose, make_program
+from solvers.search.attempt import FIRST_INTERVALS, SOLVED, end_of, first_mesh, kinks_of, loose, make_program, runs_away
 from solvers.search.conflict import VIOLATED, curve_of_least_violation, least_violation_of
 from solvers.search.contradiction import contradictory
 from solvers.search.effort import Minimiser
@@ -59,6 +59,7 @@ def begin(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Program, Minimum] | N
     stretches, kinks = len(pursuit.problem.places) - 1, kinks_of(pursuit.problem)
     outcomes: list[Outcome] = []
     astray = conflict = False
+    downhill = pursuit.problem.seek is not Seek.STATIONARY  # else nothing is learnt from where the value runs away to
     for attempt, (most, times, options) in enumerate(ATTEMPTS):
         mesh = first_mesh(stretches, times * FIRST_INTERVALS, kinks)
         where = layout(compiled, mesh)
@@ -69,7 +70,7 @@ def begin(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Program, Minimum] | N
             start = Start(guess.z / program.scale)
             minimum = _straight(program, start, minimise_) if attempt == 0 else None
             minimum = minimum or minimise_.patiently(program, start, options | doubtful)
-            if minimum.outcome in LOST and _outgrown(minimum):
+            if minimum.outcome in LOST and _outgrown(minimum) and (downhill or not runs_away(minimum)):
                 z = minimum.z * program.scale
                 program = make_program(compiled, mesh, where, z)
                 minimum = minimise_(program, Start(z / program.scale), options | doubtful)
@@ -79,7 +80,9 @@ def begin(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Program, Minimum] | N
             pursuit.end = end_of(minimum)
             if pursuit.end in (End.STOPPED, End.TIME):
                 return None
-            astray = astray or _runs_away(minimum)
+            astray = astray or runs_away(minimum)
+        if attempt == 0 and astray and not downhill:
+            return None
         if attempt == 0 and astray:  # to find out is quicker than to fail with other settings
             mesh = first_mesh(stretches)
             where = layout(compiled, mesh)
@@ -122,7 +125,7 @@ def begin_at(pursuit: Pursuit, minimise_: Minimiser, start: Trajectory) -> tuple
     where = layout(pursuit.compiled, mesh)
     z = related(start, pursuit.compiled, mesh, where)
     pursuit.first = make_program(pursuit.compiled, mesh, where, z)
-    return _unless_it_runs_away(pursuit, pursuit.first, z, minimise_, {})
+    return _unless_itruns_away(pursuit, pursuit.first, z, minimise_, {})
 
 
 def begin_from(
@@ -165,10 +168,10 @@ def _after_least_violation(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Prog
         pursuit.findings = pursuit.broken = least.findings
         pursuit.nearest = curve_of_least_violation(program, least)
         return None
-    return _unless_it_runs_away(pursuit, program, least.z * program.scale, minimise_, STEADY)
+    return _unless_itruns_away(pursuit, program, least.z * program.scale, minimise_, STEADY)
 
 
-def _unless_it_runs_away(
+def _unless_itruns_away(
     pursuit: Pursuit, program: Program, z: Array, minimise_: Minimiser, options: dict[str, Any]
 ) -> tuple[Program, Minimum] | None:
     """Minimise from z (SI); where the value runs away, find out whether it does so without end."""
@@ -176,7 +179,7 @@ def _unless_it_runs_away(
     if minimum.outcome in SOLVED:
         return program, minimum
     pursuit.end = end_of(minimum)
-    if pursuit.end in (End.STOPPED, End.TIME) or not _runs_away(minimum):
+    if pursuit.end in (End.STOPPED, End.TIME) or not runs_away(minimum):
         return None
     return in_growing_boxes(pursuit, program.mesh, program.layout, z, minimise_)
 
@@ -185,9 +188,3 @@ def _outgrown(minimum: Minimum) -> bool:
     """Whether quantities are so much larger than the first guess let expect that rounding stopped the minimiser."""
     reached = max(abs(minimum.value), float(np.abs(minimum.z).max(initial=0.0)))
     return bool(OUTGROWN < reached < np.inf)
-
-
-def _runs_away(minimum: Minimum) -> bool:
-    """Whether the value has grown beyond all sizes of the problem."""
-    diverged = minimum.outcome is Outcome.UNBOUNDED
-    return diverged or not np.isfinite(minimum.value) or minimum.value < -1e6

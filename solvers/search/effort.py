@@ -13,6 +13,7 @@ from solvers.minimise.elastic import LeastViolation, least_violation
 from solvers.minimise.ipopt import WIDE, Iterate, Minimum, Outcome, Start, minimise
 from solvers.minimise.newton import stationary_point, straight_to
 from solvers.problem import Seek
+from solvers.search.attempt import runs_away
 from solvers.search.record import Pursuit
 from solvers.solution import MeshStep, Progress, Watch
 from solvers.transcription.program import Program
@@ -32,14 +33,16 @@ class Minimiser:
 
     def __init__(self, pursuit: Pursuit, watch: Watch | None, deadline: Deadline) -> None:
         self.pursuit, self.watch, self.deadline = pursuit, watch, deadline
+        self.seeks_any = pursuit.problem.seek is Seek.STATIONARY  # no better value
         self.stopped = False
 
     def __call__(self, program: Program, start: Start, options: dict[str, Any] | None = None) -> Minimum:
-        if self.pursuit.problem.seek is Seek.STATIONARY:
+        if self.seeks_any:
             minimum = stationary_point(program, start, self._hear(program))
             self.pursuit.last = (program, minimum)
             if minimum.outcome is not Outcome.FAILED:
                 return minimum
+            options = (options or {}) | {"ipopt.max_iter": UNHURRIED}
         if program.compiled.point.states > MANY_STATES:
             options = WIDE | (options or {})
         minimum = minimise(program, start, deadline=self.deadline, watch=self._hear(program), options=options)
@@ -61,7 +64,7 @@ class Minimiser:
         """
         options = options or {}
         minimum = self(program, start, {"ipopt.max_iter": UNHURRIED} | options)
-        if minimum.outcome is not Outcome.ITERATIONS:
+        if minimum.outcome is not Outcome.ITERATIONS or (self.seeks_any and runs_away(minimum)):
             return minimum
         reached = Start(minimum.z, minimum.bound_multipliers, minimum.multipliers)
         near = self(program, reached, {"ipopt.max_iter": NEWTON_STEPS})

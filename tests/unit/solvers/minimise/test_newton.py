@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 
 from solvers.minimise.ipopt import Outcome, Start, minimise
-from solvers.minimise.newton import stationary_point, straight_to
+from solvers.minimise.newton import STEPS, stationary_point, straight_to
 from solvers.solution import Status, Verdict
 from solvers.solve import solve
 from solvers.transcription.mesh import uniform
@@ -108,3 +108,18 @@ def test_a_singular_system_says_nothing_and_leads_nowhere(capfd):
     program = program_of(problem, uniform(1, 6, 6))
     assert straight_to(program, Start(np.full(program.layout.size, 0.1)), lambda iterate: False) is None
     assert capfd.readouterr() == ("", "")
+
+
+@pytest.mark.parametrize("share, outcome", [(3.5, Outcome.SOLVED), (3.8, Outcome.FAILED)])
+def test_where_the_residual_is_least_but_not_zero_the_steps_end(share, outcome):
+    """y'' + share exp(y) = 0 between zeros has solutions up to share = 3.5138 (Frank-Kamenetskii, 1955; Bratu, 1914;
+    both from memory)."""
+    problem = stated(
+        unknowns={"y": {}},
+        dynamics=[],
+        functional={"seek": "stationary", "integrand": f"y'^2/2 - {share}*exp(y)"},
+        endpoints=["y(0) = 0", "y(1) = 0"],
+    )
+    _, point = on(problem)
+    assert point.outcome is outcome
+    assert point.iterations < STEPS - 1

@@ -98,6 +98,22 @@ def test_a_pendulum_has_better_ways_than_rest():
     assert [elliptic_k(np.sin(swing / 2)) for swing in swings] == pytest.approx([1.75, 3.5], rel=1e-5)
 
 
+def test_what_satisfies_no_condition_is_no_extremal():
+    """y = 0, worth -10/2, is stationary; downhill from a wave there is nothing but ever larger values."""
+    problem = stated(
+        independent={"name": "x", "from": 0, "to": 10},
+        dynamics=None,
+        unknowns={"y": {}},
+        functional={"seek": "stationary", "integrand": "y'^2/2 - (y^2 - 1)^2/2"},
+        endpoints=["y(0) = 0", "y(10) = 0"],
+        solve={"starts": 3},
+    )
+    solution = solve(problem)
+    assert solution.verdict is Verdict.STATIONARY
+    assert values(solution) == pytest.approx([-5], rel=1e-9)
+    assert "2 led nowhere" in other_starts(solution).sentence
+
+
 def elliptic_k(k):
     """K(k) by the arithmetic-geometric mean (Gauss)."""
     a, b = 1.0, np.sqrt(1 - k * k)
