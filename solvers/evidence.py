@@ -285,7 +285,7 @@ def _no_length(problem: Problem, path: Trajectory) -> bool:
 def _with_uprights(pursuit: Pursuit, gauged: Gauged) -> Pursuit:
     """A pursuit in parametric form whose curve rises straight up somewhere ends torn: as a function it jumps there."""
     found = uprights(gauged, curve(pursuit.paths[-1]))
-    if found and pursuit.end in (End.CONVERGED, End.SETTLED):
+    if found and pursuit.end in (End.CONVERGED, End.SETTLED, End.TORN):
         return replace(pursuit, end=End.TORN, findings=found)
     return pursuit
 

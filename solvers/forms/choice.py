@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import time
 from dataclasses import dataclass, replace
 from functools import cache
 
@@ -34,6 +35,8 @@ LOST = (End.FAILED, End.UNDEFINED)
 """Ends from which another first guess may help."""
 DOUBTFUL = 0.5
 """Share of the time for a form that may turn out not to be equivalent."""
+PATIENCE = 5.0
+"""How many times as long as it took to find a curve that jumps may be looked for one that does not, in another form."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -73,6 +76,8 @@ def _solve(stated: Problem, problem: Problem, watch: Watch | None, deadline: Dea
     signed = one_signed(stated)
     if not signed and (away := runs_away(problem, lambda: look().curve, watch, deadline)) is not None:
         return Found(away, None)
+    torn: Found | None = None
+    began = time.process_time()
     for squared in (True, False):
         gauged = form(problem, lambda: look().sizes, squared)
         if gauged is None or (squared and not gauged.squared):
@@ -93,10 +98,15 @@ def _solve(stated: Problem, problem: Problem, watch: Watch | None, deadline: Dea
             continue
         if doubtful and pursuit.solved and pursuit.end is End.TIME:
             pursuit = go_on(pursuit, hear, deadline)
-        if (pursuit.solved and pursuit.end is not End.TORN) or pursuit.end in (End.STOPPED, End.TIME):
+        if pursuit.solved and pursuit.end is End.TORN:
+            torn = torn or Found(pursuit, gauged)
+            deadline = deadline.within(PATIENCE * (time.process_time() - began))
+        elif pursuit.solved or pursuit.end is End.STOPPED or (pursuit.end is End.TIME and torn is None):
             cornered = _with_limited_slope(problem, watch, deadline) if gauged.graph and pursuit.solved else None
             return Found(pursuit, gauged) if cornered is None else Found(cornered, None)
     pursuit = solve_as_given(with_slacks(with_widths(problem)), watch, deadline)
+    if torn is not None and pursuit.end not in (End.CONVERGED, End.SETTLED, End.TORN, End.STOPPED):
+        return torn
     for further in (off_ridge, with_corner, with_mixture):
         if (better := further(pursuit, watch, deadline)) is not None:
             return Found(better, None)

@@ -31,6 +31,8 @@ TORN_ERROR = 0.05
 NARROWER = 0.5
 STAYING = 0.7
 """... if within so much of the width, or less, it rises by so much of what it did or more."""
+THIN = 0.1
+"""A piece, relative to the whole, in which a state that jumps makes most of its way."""
 
 TREND = 4
 """So many meshes, one after the other, tell how the error falls and the effort grows ..."""
@@ -91,7 +93,7 @@ def settled(pursuit: Pursuit) -> End | None:
     if value_met and errors[-1] <= tolerance and pursuit.curve_error <= tolerance:
         return End.CONVERGED
     if len(errors) > TORN_MESHES and min(errors[-TORN_MESHES:]) > max(TORN_ERROR, 0.5 * errors[-TORN_MESHES - 1]):
-        pursuit.findings = _jump(pursuit)
+        pursuit.findings = _jump(pursuit) or _leap(pursuit)
         if pursuit.findings:
             return End.TORN
     stuck = len(errors) > 6 and min(errors[-6:]) > 0.3 * errors[-7]
@@ -140,3 +142,28 @@ def _jump(pursuit: Pursuit) -> tuple[Finding, ...]:
         return ()
     name = primed(pursuit.compiled.lowered.states[int(np.argmax(np.where(staying, rises[-1], 0.0)))])
     return (Finding(name, "", None, float(edges[-1].mean()), "jumps"),)
+
+
+def _leap(pursuit: Pursuit) -> tuple[Finding, ...]:
+    """Which state makes most of its way over an ever shorter piece, which may lie to either side of one place.
+
+    So it does where moving costs nothing, as turning does at a pole.
+    """
+    names = pursuit.compiled.lowered.states
+    for k, name in enumerate(names):
+        pieces = np.array([_shortest(path, k) for path in pursuit.paths[-TORN_MESHES:]])
+        widths = np.diff(pieces, axis=1)[:, 0]
+        apart = np.maximum(pieces[1:, 0] - pieces[:-1, 1], pieces[:-1, 0] - pieces[1:, 1])
+        falling = np.all(widths[1:] <= widths[:-1]) and widths[-1] < NARROWER * widths[0]
+        if falling and widths[0] < THIN * np.ptp(pursuit.paths[-1].breaks) and np.all(apart <= widths[:-1]):
+            return (Finding(primed(name), "", None, float(pieces[-1].mean()), "jumps"),)
+    return ()
+
+
+def _shortest(path: Trajectory, state: int) -> tuple[float, float]:
+    """The shortest piece, from break to break, over which a state makes most of its way."""
+    way = np.concatenate([[0.0], np.cumsum(np.abs(np.diff(path.nodes[:, state])))])
+    ends = np.searchsorted(way, way + STAYING * way[-1])
+    starts = np.flatnonzero(ends < len(way))
+    shortest = starts[np.argmin(path.breaks[ends[starts]] - path.breaks[starts])]
+    return float(path.breaks[shortest]), float(path.breaks[ends[shortest]])

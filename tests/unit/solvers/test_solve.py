@@ -156,6 +156,23 @@ def test_a_curve_that_tends_to_a_jump_has_no_optimum():
     assert abs(finding.place) < 1e-3
 
 
+def test_a_curve_over_the_pole_turns_there_at_no_cost():
+    """On the unit sphere, between places of the latitude 0.3 whose longitudes are told to differ by 4 > pi: over the
+    pole it is pi - 0.6, whatever the turn there.  As a function of the longitude the latitude jumps at both ends."""
+    members = {
+        "independent": {"name": "ph", "from": 0, "to": 4},
+        "unknowns": {"th": {}},
+        "functional": {"integrand": "sqrt(th'^2 + cos(th)^2)"},
+        "endpoints": ["th(0) = 0.3", "th(4) = 0.3"],
+    }
+    solution = solve(shape(**members))
+    assert solution.verdict in (Verdict.NO_OPTIMUM, Verdict.NOT_VERIFIED)
+    assert solution.diagnosis.reason == "degenerates"
+    assert solution.value == pytest.approx(np.pi - 0.6, rel=1e-5)
+    assert [finding.label for finding in solution.diagnosis.findings] == ["th", "th"]
+    assert [finding.place for finding in solution.diagnosis.findings] == pytest.approx([0, 4], abs=0.2)
+
+
 def test_a_value_that_no_curve_can_better_is_the_least_of_all():
     """y = max(0, x) has slopes 0 and 1 (Bolza, 1904; from memory); where y is zero the minimiser finds no rest."""
     broken = {
