@@ -168,7 +168,8 @@ def find_row_sizes(compiled: Compiled, where: Layout, scales: Scales, z: Array, 
     n = point.states
     pointwise = slopes[:, n : n + point.constraints]
     value = float(where.measures @ integrand) + float(end_slopes[-1])
-    value = max(value, EXACT * _squares(compiled), SHRINKAGE * before)
+    value = max(value, EXACT * _squares(compiled))
+    value = max(value, SHRINKAGE * before) if value > 0 else before
     return RowSizes(
         pointwise=_positive(np.median(pointwise, axis=0)) if point.constraints else np.zeros(0),
         conditions=_positive(end_slopes[:-1]),
