@@ -138,9 +138,9 @@ def begin_from(
     z = carried.z
     program = make_program(pursuit.compiled, mesh, where, z)
     z = z / program.scale
+    if program.overdetermined:
+        return None
     if any(pursuit.compiled.rank_of(held) is not None for held in pursuit.problem.held):
-        if program.overdetermined:
-            return None
         warm = carried.onto(program)  # along a constraint multipliers are half of what is known
         room = {"ipopt.max_iter": iterations or FEW_ITERATIONS}
         near = minimise_.nearby(program, warm) or minimise_(program, warm, room)

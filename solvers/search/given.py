@@ -7,17 +7,20 @@ import time
 from solvers.deadline import Deadline
 from solvers.problem import Problem
 from solvers.search.early import sharpened_early
-from solvers.search.pursuit import go_on, pursue
+from solvers.search.pursuit import MESHES, go_on, pursue
 from solvers.search.record import End, Pursuit
-from solvers.search.sharpen import sharpen
+from solvers.search.sharpen import sharpen, with_structure
 from solvers.search.signals import jumps_at_breaks
 from solvers.solution import Watch
+from solvers.transcription.functions import linear_controls
 from solvers.transcription.trajectory import Trajectory
 
 SHARE = 0.6
 """Share of the remaining time that the search for switches may take."""
 PATIENCE = 20.0
 """How much longer than the plain meshes it may take."""
+CLEARER = 2
+"""Plain meshes after which switches are looked for again."""
 NEARLY = 30.0
 """How far from the tolerance, as a factor, plain meshes are given a chance to finish first."""
 
@@ -49,8 +52,25 @@ def solve_as_given(
             sharp.end = End.SETTLED  # the room for this search was over, not the time of the run
         if sharp.end is End.CONVERGED or (sharp.end is End.SETTLED and sharp.shown):
             return sharp
-    plain = go_on(pursuit, watch, deadline)
-    return plain if sharp is None or _nearer(plain, sharp) else sharp
+    clear = _on_finer_meshes(pursuit, watch, deadline)
+    if clear is not None:
+        return _after(pursuit, clear)
+    return pursuit if sharp is None or _nearer(pursuit, sharp) else sharp
+
+
+def _on_finer_meshes(plain: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit | None:
+    """Refine a plain pursuit to the end, or until it shows its switches so clearly that they can be solved for."""
+    tried: list[Problem] = []
+    going, switching = True, bool(linear_controls(plain.compiled))
+    while going:
+        count = len(plain.steps)
+        go_on(plain, watch, deadline, CLEARER)
+        going = plain.end is End.SETTLED and len(plain.steps) == count + CLEARER and len(plain.steps) < MESHES
+        if switching and plain.end in (End.SETTLED, End.POINTS) and not deadline.over:
+            sharp = with_structure(plain, plain.paths[-1], watch, deadline.within(SHARE * deadline.left), tried)
+            if sharp is not None and sharp.end is End.CONVERGED:
+                return sharp
+    return None
 
 
 def _after(plain: Pursuit, sharp: Pursuit) -> Pursuit:

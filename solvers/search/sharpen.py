@@ -25,6 +25,7 @@ from solvers.search.structure import (
     softened,
     with_switches,
 )
+from solvers.search.touches import parted
 from solvers.solution import Watch
 from solvers.transcription.collocation import Family
 from solvers.transcription.functions import linear_controls
@@ -145,6 +146,10 @@ def with_structure(
                 loose += released(path, wrong)
             continue
         pursuit = now
+        apart = parted(path)
+        if apart is not None:
+            one = with_switches(base.problem, apart, path, linear, loose)
+            continue
         if not jumps_at_breaks(path) and (now.end is End.CONVERGED or not slow(now)):
             break
     if pursuit is None or pursuit.end is End.CONVERGED or _chatters(pursuit):

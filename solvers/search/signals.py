@@ -191,6 +191,6 @@ def _merged(found: list[Switch], path: Trajectory) -> list[Switch]:
     ]
     for touch in (switch for switch in found if switch.touching is not None):
         taken = np.array([*path.places, *(switch.place for switch in merged)])
-        if np.abs(taken - touch.place).min() > 5e-3 * span:
+        if np.abs(taken - touch.place).min() > 3e-3 * span:
             merged.append(touch)
     return sorted(merged, key=lambda switch: switch.place)

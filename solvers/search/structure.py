@@ -31,6 +31,10 @@ SMOOTH = 1e-2
 """Jump of a control, relative to its size, up to which it goes on smoothly."""
 COLLAPSED = 3e-3
 """Width, relative to the whole, of a stretch that is about to vanish."""
+TOUCHING = 3e-4
+"""The same where one of its ends is a touch."""
+RESTING = 1e-6
+"""How near to its limit, relative to its range, a state lies there all along, where a control is held besides."""
 FREE = 0.9
 """Share of the points off all limits at which a control counts as free all along."""
 
@@ -57,7 +61,7 @@ def with_switches(
     is left nor a control to be calmed.
     """
     own = _own_places(problem, path)
-    kept = _without_collapsed(found, COLLAPSED * float(np.ptp(path.places)))
+    kept = _without_collapsed(found, float(np.ptp(path.places)))
     while True:
         spots: list[Spot] = sorted([*own, *((switch.place, switch) for switch in kept)], key=lambda spot: spot[0])
         held, implied = _held(path, np.array([place for place, _ in spots]), loose)
@@ -93,16 +97,25 @@ def _free_all_along(path: Trajectory, linear: list[Quantity]) -> bool:
     return all(np.mean(s.labels == 0) > FREE for s in signals(path) if s.quantity in linear)
 
 
-def _without_collapsed(found: list[Switch], width: float) -> list[Switch]:
+def _without_collapsed(found: list[Switch], span: float) -> list[Switch]:
     """Two switches with next to nothing between them as one."""
     kept: list[Switch] = []
     for switch in found:
-        if kept and switch.place - kept[-1].place < width:
-            low, high = kept[-1].place, switch.place
-            kept[-1] = Switch((low + high) / 2, low, high, kept[-1].touching or switch.touching)
-        else:
+        last = kept[-1] if kept else None
+        if last is None or switch.place - last.place >= nearest(last, switch) * span:
             kept.append(switch)
+        else:
+            low, high = last.place, switch.place
+            kept[-1] = Switch((low + high) / 2, low, high, last.touching or switch.touching)
     return kept
+
+
+def nearest(one: Switch, other: Switch) -> float:
+    """How near to each other, relative to the whole, two switches may be.
+
+    A state may touch its limit soon after a control has switched: that is no arc which vanishes.
+    """
+    return COLLAPSED if (one.touching is None) == (other.touching is None) else TOUCHING
 
 
 def _without_contradiction(kept: list[Switch], spots: list[Spot], held: tuple[Held, ...]) -> list[Switch] | None:
@@ -248,8 +261,17 @@ def _held(path: Trajectory, places: Array, loose: Sequence[Release]) -> tuple[tu
         ]
         most = room if len({held.name for held in here}) > 1 else len(here)
         found += here[:most]
-        implied += here[most:]
+        implied += [one for one in here[most:] if _rests(path, one, inside)]
     return tuple(found), tuple(implied)
+
+
+def _rests(path: Trajectory, held: Held, inside: NDArray[np.bool_]) -> bool:
+    """Whether a state lies on its limit, and is not only near it for a while."""
+    signal = next((s for s in signals(path) if s.quantity == (held.name, held.order)), None)
+    if signal is None:
+        return True
+    limit, size = (signal.lower if held.side < 0 else signal.upper), max(float(np.ptp(signal.values)), 1e-300)
+    return bool(np.abs(signal.values[inside] - limit).max() <= RESTING * size)
 
 
 def _calm(linear: list[Quantity], stretches: int, held: tuple[Held, ...], compiled: Compiled) -> tuple[Calm, ...]:

@@ -151,6 +151,26 @@ def test_a_state_that_rests_because_a_control_does_is_implied():
     assert changed.calm == ()
 
 
+def test_a_state_that_is_near_its_limit_for_a_while_is_not_implied():
+    """The tank is nearly empty, but goes on to run dry: its limit still has to be stated."""
+    tank = stated(unknowns={"x": {"within": [0, 1]}, "u": {"within": [2e-5, 2]}}, dynamics=["x' = -u"],
+                  endpoints=["x(0) = 1"])  # fmt: skip
+    path = path_along(TENTHS, lambda t: np.maximum(1 - 2 * t, 2e-5 * (1 - t)), lambda t: np.where(t < 0.5, 2, 2e-5),
+                      tank)  # fmt: skip
+    assert signals(path)[1].labels[-8:].tolist() == [-1] * 8
+    changed = with_switches(tank, switches(path, LINEAR), path, LINEAR)
+    assert [(h.stretch, h.name, h.side) for h in changed.held] == [(0, "u", 1), (1, "u", -1)]
+    assert changed.implied == ()
+
+
+def test_a_touch_soon_after_a_switch_is_a_place_of_its_own():
+    path = path_of(lambda t: np.where(t < 0.4, -1.0, 1.0))
+    touch = Switch(0.401, 0.401, 0.401, (("x", 0), -1))
+    assert len(with_switches(bang(), [Switch(0.4, 0.4, 0.4), touch], path, LINEAR).places) == 4
+    collapsing = Switch(0.401, 0.401, 0.401)
+    assert len(with_switches(bang(), [Switch(0.4, 0.4, 0.4), collapsing], path, LINEAR).places) == 3
+
+
 def test_switches_that_are_places_already_are_seen_as_such():
     path = path_of(lambda t: np.select([t < 0.2, t < 0.7], [1.0, -1.0], 1.0))
     assert present_switches(path) == []
