@@ -95,8 +95,8 @@ def _from_starts(
     began, idle = time.perf_counter(), time.process_time()
     deadline = in_seconds(problem.options.time_limit)
     if problem.options.starts > 1:
-        solve_one = partial(_solve_once, form=form)
-        solution = solve_from_starts(problem, watch, solve_one, first_look(problem).sizes, together)
+        solve_one, leave_saddle = (partial(_solve_once, form=form, leaving=leaving) for leaving in (False, True))
+        solution = solve_from_starts(problem, watch, solve_one, leave_saddle, first_look(problem).sizes, together)
         varied = problem.sweeps or problem.continuation
         found = (
             solve_in_best_form(problem, watch, deadline, form) if varied else None
@@ -112,10 +112,12 @@ def _from_starts(
     return solution
 
 
-def _solve_once(problem: Problem, watch: Watch | None, form: Form) -> Solution:
-    """Solve a problem from its one start, for its constants as they stand."""
+def _solve_once(problem: Problem, watch: Watch | None, form: Form, leaving: bool) -> Solution:
+    """Solve a problem from its one start, for its constants as they stand; `leaving` a saddle or not."""
     began, deadline = time.perf_counter(), in_seconds(problem.options.time_limit)
     found = solve_in_best_form(problem, watch, deadline, form)
+    if leaving:
+        return _told(problem, found, watch, deadline, began)[1]
     name_conflicts(found.pursuit, watch, deadline)
     return with_evidence(problem, found, began)
 

@@ -15,6 +15,7 @@ from __future__ import annotations
 import time
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
+from functools import partial
 
 import numpy as np
 from numpy.typing import NDArray
@@ -31,6 +32,8 @@ ALIKE = 1e-3
 """Least distance of curves, relative to their size, that makes two of them."""
 
 PLACES = 401
+
+BESIDE = "beside a saddle"
 
 NEAR_ZERO = 1e-3
 """An unknown never counts for smaller than this share of its typical size."""
@@ -49,12 +52,18 @@ Solver = Callable[[Problem, Watch | None], Solution]
 
 
 def solve_from_starts(
-    problem: Problem, watch: Watch | None, solve_one: Solver, sizes: Mapping[str, float], together: Together = IN_TURN
+    problem: Problem,
+    watch: Watch | None,
+    solve_one: Solver,
+    leave_saddle: Solver,
+    sizes: Mapping[str, float],
+    together: Together = IN_TURN,
 ) -> Solution:
     """The best of what several starts lead to, with all that was found.
 
-    `solve_one` solves from one start, `sizes` are typical ones of the unknowns.  The first start may take all the time
-    there is: what it finds is found without the others too.  Raises `RuntimeError` where every start broke.
+    `solve_one` solves from one start, `leave_saddle` likewise, but goes on from a saddle: so where saddles are all that
+    was found.  `sizes` are typical ones of the unknowns.  The first start may take all the time there is: what it finds
+    is found without the others too.  Raises `RuntimeError` where every start broke.
     """
     began = time.perf_counter()
     planned = variations(problem, problem.options.starts)
@@ -70,13 +79,21 @@ def solve_from_starts(
 
         return solved
 
-    outcomes = together([task(number) for number in range(len(planned))], _Numbered(watch))
+    numbered = _Numbered(watch)
+    outcomes = together([task(number) for number in range(len(planned))], numbered)
     made = [(v.label, found) for v, found in zip(planned, outcomes, strict=True) if isinstance(found, Solution)]
     broken = [f"{v.label}: {found.reason}" for v, found in zip(planned, outcomes, strict=True)
               if isinstance(found, Lost)]  # fmt: skip
     if not made:
         raise RuntimeError("; ".join(broken))
-    return _compared(problem, made, broken, sizes, time.perf_counter() - began)
+    best = _compared(problem, made, broken, sizes, time.perf_counter() - began)
+    left = problem.options.time_limit - (time.perf_counter() - began)
+    if best.verdict not in REFUTED or left <= 0:
+        return best
+    start = next(v for v in planned if v.label in best.extremals[0].starts)
+    options = replace(problem.options, time_limit=left, starts=1)
+    beside = leave_saddle(replace(problem, start=start, options=options), partial(numbered, len(planned) - 1))
+    return _compared(problem, [*made, (BESIDE, beside)], broken, sizes, time.perf_counter() - began)
 
 
 class _Numbered:

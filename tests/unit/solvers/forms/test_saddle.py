@@ -55,6 +55,16 @@ def test_a_loop_around_a_torus_slips_inside():
     assert any(LEFT in note and "18.8495559" in note for note in found.notes)  # 6 pi
 
 
+def test_where_several_starts_lead_to_saddles_only_these_are_left():
+    """A bent strut beside a curve u that stays zero: the first two starts vary u only."""
+    problem = between(1, "u'^2/2 + y'^2/2 + 15*cos(y)", unknowns={"u": {}, "y": {}}, solve={"starts": 2},
+                      endpoints=["u(0) = 0", "u(1) = 0", "y(0) = 0", "y(1) = 0"])  # fmt: skip
+    found = solve(problem)
+    assert found.verdict is Verdict.LOCAL_MINIMUM
+    assert abs(found.value - swing(15, 2)) <= found.value_error < 1e-6
+    assert [extremal.solution.verdict for extremal in found.extremals] == [found.verdict, Verdict.NOT_A_MINIMUM]
+
+
 def test_a_saddle_is_left_for_a_maximum():
     found = solve(between(1, "-y'^2/2 - 15*cos(y)", seek="maximum"))
     assert found.verdict is Verdict.LOCAL_MAXIMUM

@@ -146,7 +146,7 @@ def from_list(*found):
         return left.pop(0)
 
     problem = shape(endpoints=["y(0) = 0", "y(3) = 1"], solve={"starts": len(found)})
-    return solve_from_starts(problem, None, solve_one, {"y": 1.0})
+    return solve_from_starts(problem, None, solve_one, solve_one, {"y": 1.0})
 
 
 def test_a_better_curve_takes_back_what_convexity_claims():
@@ -164,6 +164,25 @@ def test_a_value_that_does_not_stand_is_no_rival():
     assert [e.solution.value for e in solution.extremals] == [2.0]
     assert other_starts(solution).status is Status.PASSED
     assert "2 led nowhere" in other_starts(solution).sentence
+
+
+def test_where_starts_lead_to_saddles_only_these_are_left():
+    problem = shape(endpoints=["y(0) = 0", "y(3) = 1"], solve={"starts": 2})
+    saddles = {"default guess": line(1.0, 3.0, Verdict.NOT_A_MINIMUM), "else": line(2.0, 2.0, Verdict.NOT_A_MINIMUM)}
+    left = []
+
+    def solve_one(problem, watch):
+        return saddles.get(problem.start.label, saddles["else"])
+
+    def leave_saddle(problem, watch):
+        left.append(problem.start.label)
+        return line(3.0, 1.0)
+
+    solution = solve_from_starts(problem, None, solve_one, leave_saddle, {"y": 1.0})
+    assert left == ["y with 1 half wave up"]  # the better one
+    assert solution.verdict is Verdict.LOCAL_MINIMUM
+    assert [(e.starts[0], e.solution.value) for e in solution.extremals] == [
+        ("beside a saddle", 1.0), ("y with 1 half wave up", 2.0), ("default guess", 3.0)]  # fmt: skip
 
 
 def test_a_better_value_that_is_only_approached_is_told():
