@@ -36,6 +36,7 @@ from solvers.search.structure import present_switches
 from solvers.solution import (
     Change,
     Check,
+    Course,
     Price,
     Slope,
     Solution,
@@ -169,6 +170,9 @@ def with_evidence(
     errors = place_errors(pursuit)
     plain = pursuit.end is not End.WIGGLES  # what is mixed is no control of the problem
     switches = _switches(pursuit, gauged, errors) if plain else ()
+    open_ones = {one.name for one in loose if one.place is None}  # nothing says what these do
+    courses = _stretches(pursuit, gauged, errors, verdict not in NO_OPTIMUM_FOUND) if plain and not brief else ()
+    courses = tuple(s for s in courses if s.course is not Course.SINGULAR or s.of.rstrip("'") not in open_ones)
     return Solution(
         verdict=verdict,
         value=value,
@@ -189,7 +193,7 @@ def with_evidence(
         fit=fitted,
         notes=notes,
         switches=switches,
-        stretches=_stretches(pursuit, gauged, errors, verdict not in NO_OPTIMUM_FOUND) if plain and not brief else (),
+        stretches=courses,
     )
 
 

@@ -13,7 +13,7 @@ from solvers.evidence import with_evidence
 from solvers.forms.choice import Found
 from solvers.problem import Options
 from solvers.search.pursuit import pursue
-from solvers.solution import Verdict
+from solvers.solution import Status, Verdict
 from solvers.solve import solve
 from tests.unit.solvers.problems import shape, stated
 
@@ -155,3 +155,34 @@ def test_a_saddle_of_parameters_is_no_minimum(more):
     found = solve(problem)
     at_corner = max(abs(value) for value in found.parameters.values()) > 0.9
     assert at_corner or found.verdict in (Verdict.STATIONARY, Verdict.NOT_A_MINIMUM)
+
+
+def test_what_nothing_determines_is_not_looked_for_and_not_told_as_if_it_were():
+    """From rest to rest over 1 in the time 1 with |u| <= 5, at no cost: 4 would suffice, so that u has room."""
+    problem = stated(
+        dynamics=["x'' = u"],
+        unknowns={"x": {}, "u": {"within": [-5, 5]}},
+        functional={"endpoint": "0"},
+        endpoints=["x(0) = 0", "x'(0) = 0", "x(1) = 1", "x'(1) = 0"],
+    )
+    found = solve(problem)
+    assert [one.name for one in found.undetermined] == ["u"]
+    assert found.stretches == ()
+    assert_proved(found, 0.0)
+
+
+def test_parameters_of_which_only_the_sum_counts_fit_exactly():
+    """y = x with a + b = 1 makes both squares zero."""
+    problem = over_one("(y' - a - b)^2 + (y - x)^2", endpoints=["y(0) = 0"], parameters={"a": {}, "b": {}})
+    found = solve(problem)
+    assert {one.name for one in found.undetermined} == {"a", "b"}
+    assert found.parameters["a"] + found.parameters["b"] == pytest.approx(1, abs=1e-6)
+    assert_proved(found, 0.0)
+
+
+def assert_proved(found, value):
+    """Global, and no check failed beside that claim."""
+    assert found.verdict is Verdict.GLOBAL_MINIMUM
+    assert not [check.name for check in found.checks if check.status is Status.FAILED]
+    assert abs(found.value - value) <= found.value_error < 1e-8
+    assert len(found.meshes) < 12
