@@ -20,7 +20,7 @@ from solvers.checks.sampling import Sampler
 from solvers.deadline import Deadline
 from solvers.forms.choice import Found, in_original_terms, rightly_squared
 from solvers.forms.signs import one_signed
-from solvers.minimise.ipopt import Minimum, Outcome
+from solvers.minimise.ipopt import FLOOR, Minimum, Outcome
 from solvers.problem import Problem, Seek
 from solvers.search.given import solve_as_given
 from solvers.search.record import End, Pursuit
@@ -30,10 +30,8 @@ from solvers.transcription.trajectory import Trajectory, as_start, trajectory
 
 Array = NDArray[np.float64]
 
-STEP = 0.1
-"""The first length that is tried, in sizes of what moves most."""
-DOUBLINGS = 8
-"""How often it is doubled at the most while the Lagrangian falls."""
+STEPS = 2.0 ** np.arange(-24, 6)
+"""Lengths that are tried in turn while the Lagrangian falls, in sizes of what moves most: formulas may bend sooner."""
 ALIKE = 1e-6
 """Falls to both sides that differ by less, relative to either, are those of a symmetrical saddle."""
 SHARE, PATIENCE, LEAST = 0.5, 20.0, 2.0
@@ -122,13 +120,14 @@ def _as_far_as_it_falls(path: Trajectory, way: Array) -> tuple[float, Array]:
         return float(program.numbers.value(z) + multipliers @ program.numbers.constraints(z))
 
     first = lagrangian(start.z)
-    fall, reached = 0.0, start.z
-    for doubled in range(DOUBLINGS + 1):
-        z = np.clip(start.z + STEP * 2.0**doubled * way, program.lower, program.upper)
+    fall, reached, noise = 0.0, start.z, FLOOR * max(abs(first), 1.0)
+    for step in STEPS:
+        z = np.clip(start.z + step * way, program.lower, program.upper)
         now = first - lagrangian(z)
-        if not now > fall:
+        if now > max(fall, noise):
+            fall, reached = now, z
+        elif fall > 0:
             break
-        fall, reached = now, z
     return fall, reached
 
 

@@ -44,12 +44,17 @@ def kinks_of(problem: Problem) -> frozenset[int]:
     return frozenset(k for k, place in enumerate(problem.places) if place.label.startswith(KINK + " "))
 
 
-def make_program(compiled: Compiled, mesh: Mesh, where: Layout, z: Array, before: Program | None = None) -> Program:
-    """A program whose scales come from values (SI) on its mesh, and do not fall far below those of the one before."""
+def make_program(
+    compiled: Compiled, mesh: Mesh, where: Layout, z: Array, before: Program | None = None, size: float = 0.0
+) -> Program:
+    """A program whose scales come from values (SI) on its mesh, and do not fall far below those of the one before.
+
+    `size` is what is known of the functional's where there is none before.
+    """
     if before is None:
         z = at_natural_sizes(compiled, mesh, where, z)
     scales = find_scales(compiled, where, z, None if before is None else before.scales)
-    rows = find_row_sizes(compiled, where, scales, z, 0.0 if before is None else abs(before.value_scale))
+    rows = find_row_sizes(compiled, where, scales, z, size if before is None else abs(before.value_scale))
     return transcribe(compiled, mesh, where, scales, rows, sizes_along(compiled, where, scales, z))
 
 

@@ -124,7 +124,7 @@ def begin_at(pursuit: Pursuit, minimise_: Minimiser, start: Trajectory) -> tuple
     mesh = first_mesh(len(pursuit.problem.places) - 1, kinks=kinks_of(pursuit.problem))
     where = layout(pursuit.compiled, mesh)
     z = related(start, pursuit.compiled, mesh, where)
-    pursuit.first = make_program(pursuit.compiled, mesh, where, z)
+    pursuit.first = make_program(pursuit.compiled, mesh, where, z, size=abs(start.program.value_scale))
     return _unless_itruns_away(pursuit, pursuit.first, z, minimise_, {})
 
 
