@@ -29,6 +29,7 @@ from solvers.forms.slack import SLACK
 from solvers.formula.nodes import Name
 from solvers.minimise.ipopt import FLOOR
 from solvers.problem import KINK, Problem, Seek
+from solvers.search.accumulation import accumulation
 from solvers.search.chatter import chatter
 from solvers.search.escape import escapes, may_escape
 from solvers.search.record import End, Pursuit
@@ -329,6 +330,14 @@ def _notes(problem: Problem, found: Found, pursuit: Pursuit) -> list[str]:
         notes.append(f"{primed(crowd.control)} chatters: it switches ever faster towards {place}{unit}, each time "
                      f"after some {crowd.ratio:.2f} of the time before. The first switches were found; what follows "
                      "runs as their mean.")  # fmt: skip
+    crowded = None if gauged is not None else accumulation(pursuit.paths[-1])
+    if crowded is not None:
+        rest = float(pursuit.paths[-1].places[crowded.rest]) / problem.independent_unit.factor
+        unit = f" {problem.independent_unit.text}" if problem.independent_unit.text else ""
+        notes.append(f"Touches accumulate: {primed(crowded.state)} cannot come to rest on its limit at once, as a "
+                     f"control appears only in its derivative of order {crowded.order}. It touches it ever faster; the "
+                     f"first {len(crowded.places) - 1} were found, and from about {problem.independent} = {rest:.2g}"
+                     f"{unit} on, what follows is taken for an arc on the limit.")  # fmt: skip
     if _no_length(problem, pursuit.paths[-1]):
         notes.append("The best curve has no length: it ends where it begins, and what is shown of it is a point.")
     if pursuit.end is End.SETTLED:

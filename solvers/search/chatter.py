@@ -95,26 +95,37 @@ def one_more(path: Trajectory) -> Problem | None:
     place = at + ratio * time
     places = np.insert(path.places, new + 1, place)
     places[new] = at
-    name = f"{SWITCH} {1 + sum(p.label.startswith(SWITCH + ' ') for p in problem.places)}"
-    side = -_side(problem, found.control, found.last)
-    parameter = Parameter(name, place - 0.9 * (place - at), place + 0.45 * (end - place), place)
+    changed = divided(problem, new, places, (place - 0.9 * (place - at), place + 0.45 * (end - place)))
+    return replace(changed, held=(*changed.held, Held(new, *found.control, -_side(problem, found.control, found.last))))
+
+
+def divided(problem: Problem, stretch: int, places: Array, room: tuple[float, float]) -> Problem:
+    """The problem with one more switch that divides a stretch: what is said of that holds of its second part.
+
+    `places` are the values from which all start then, `room` is between what the new one may lie.
+    """
+    name = f"{SWITCH} {1 + sum(place.label.startswith(SWITCH + ' ') for place in problem.places)}"
+    after = (*problem.places[: stretch + 1], Place(Name(name), name), *problem.places[stretch + 1 :])
+    labels = [place.label for place in after]
+
+    def moved(index: int) -> int:
+        return index + (index >= stretch)
+
     return replace(
         problem,
-        places=(*problem.places[: new + 1], Place(Name(name), name), *problem.places[new + 1 :]),
-        parameters=(*(_roomy(p, places, problem) for p in problem.parameters), parameter),
-        held=(*(replace(h, stretch=h.stretch + (h.stretch >= new)) for h in problem.held),
-              Held(new, *found.control, side)),
-        implied=tuple(replace(h, stretch=h.stretch + (h.stretch >= new)) for h in problem.implied),
-        calm=tuple(replace(c, stretch=c.stretch + (c.stretch >= new)) for c in problem.calm),
+        places=after,
+        parameters=(*(_roomy(parameter, places, labels) for parameter in problem.parameters),
+                    Parameter(name, *room, float(places[stretch + 1]))),
+        held=tuple(replace(h, stretch=moved(h.stretch)) for h in problem.held),
+        implied=tuple(replace(h, stretch=moved(h.stretch)) for h in problem.implied),
+        calm=tuple(replace(c, stretch=moved(c.stretch)) for c in problem.calm),
     )  # fmt: skip
 
 
-def _roomy(parameter: Parameter, places: Array, problem: Problem) -> Parameter:
+def _roomy(parameter: Parameter, places: Array, labels: list[str]) -> Parameter:
     """A switch with the room that its neighbours leave now."""
-    labels = [place.label for place in problem.places]
     if parameter.name not in labels or not parameter.name.startswith(SWITCH + " "):
         return parameter
-    k = labels.index(parameter.name)
-    at = float(places[k])
+    at = float(places[labels.index(parameter.name)])
     low, high = places[places < at].max(), places[places > at].min()
     return Parameter(parameter.name, at - 0.45 * (at - low), at + 0.45 * (high - at), at, parameter.unit)

@@ -8,11 +8,12 @@ import numpy as np
 
 from solvers.deadline import Deadline
 from solvers.problem import Problem
+from solvers.search.accumulation import accumulation
 from solvers.search.holding import surely_held_rightly
 from solvers.search.pursuit import go_on, pursue
 from solvers.search.record import End, Pursuit
 from solvers.search.refinement import smooth_all_along
-from solvers.search.sharpen import agrees, alike, mesh_between, slow
+from solvers.search.sharpen import agrees, alike, mesh_between, slow, worse
 from solvers.search.signals import Switch, jumps_at_breaks, switches
 from solvers.search.structure import at_the_edge, with_switches
 from solvers.solution import Watch
@@ -111,5 +112,7 @@ def _surely(changed: Problem, base: Pursuit, watch: Watch | None, deadline: Dead
 
 def _right(sharp: Pursuit, base: Pursuit) -> bool:
     path = sharp.paths[-1]
-    whole = not at_the_edge(path) and not jumps_at_breaks(path)
-    return whole and agrees(sharp, base) and surely_held_rightly(path)
+    whole = (
+        not at_the_edge(path) and not jumps_at_breaks(path) and accumulation(path) is None
+    )  # else touches are missing
+    return whole and agrees(sharp, base) and not worse(sharp, base) and surely_held_rightly(path)

@@ -9,7 +9,7 @@ from solvers.problem import Problem
 from solvers.search.early import sharpened_early
 from solvers.search.pursuit import MESHES, go_on, pursue
 from solvers.search.record import End, Pursuit
-from solvers.search.sharpen import sharpen, with_structure
+from solvers.search.sharpen import sharpen, with_structure, worse
 from solvers.search.signals import jumps_at_breaks
 from solvers.solution import Watch
 from solvers.transcription.functions import linear_controls
@@ -50,7 +50,7 @@ def solve_as_given(
         sharp = _after(pursuit, sharp)
         if sharp.end is End.TIME and not deadline.over and sharp.value_met_before:
             sharp.end = End.SETTLED  # the room for this search was over, not the time of the run
-        if sharp.end is End.CONVERGED or (sharp.end is End.SETTLED and sharp.shown):
+        if not worse(sharp, pursuit) and (sharp.end is End.CONVERGED or (sharp.end is End.SETTLED and sharp.shown)):
             return sharp
     clear = _on_finer_meshes(pursuit, watch, deadline)
     if clear is not None:
@@ -68,7 +68,7 @@ def _on_finer_meshes(plain: Pursuit, watch: Watch | None, deadline: Deadline) ->
         going = plain.end is End.SETTLED and len(plain.steps) == count + CLEARER and len(plain.steps) < MESHES
         if switching and plain.end in (End.SETTLED, End.POINTS) and not deadline.over:
             sharp = with_structure(plain, plain.paths[-1], watch, deadline.within(SHARE * deadline.left), tried)
-            if sharp is not None and sharp.end is End.CONVERGED:
+            if sharp is not None and sharp.end is End.CONVERGED and not worse(sharp, plain):
                 return sharp
     return None
 
@@ -81,7 +81,9 @@ def _after(plain: Pursuit, sharp: Pursuit) -> Pursuit:
 
 
 def _nearer(plain: Pursuit, sharp: Pursuit) -> bool:
-    """Whether plain meshes have come nearer to the tolerance than those with switches."""
+    """Whether plain meshes have come nearer to the tolerance than those with switches, or to a better value."""
+    if worse(sharp, plain):
+        return True
     if End.CONVERGED in (plain.end, sharp.end) or plain.shown != sharp.shown:
         return plain.end is End.CONVERGED or (plain.shown and sharp.end is not End.CONVERGED)
     return plain.value_error <= sharp.value_error

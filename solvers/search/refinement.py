@@ -17,11 +17,9 @@ from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
 from solvers.search.contacts import contacts
-from solvers.series import basis
+from solvers.search.excess import excess
 from solvers.transcription.collocation import Family
-from solvers.transcription.evaluation import mapped
 from solvers.transcription.functions import linear_controls
-from solvers.transcription.limits import constants_of, interval_of, quantity_bounds
 from solvers.transcription.mesh import Interval, Mesh, interval
 from solvers.transcription.trajectory import Trajectory, sizes_of
 
@@ -103,64 +101,9 @@ def estimate(path: Trajectory) -> Estimate:
         shapes.append(bend if control_errors[k] > errors[k] else shape)
         bends.append(bend)
     errors = np.fmax(errors, control_errors)
-    gained = _add_excess(path, errors)
+    left, gained = excess(path)
+    errors = np.maximum(errors, left)
     return Estimate(errors, tuple(shapes), tuple(bends), gained)
-
-
-BETWEEN = np.linspace(-1.0, 1.0, 15)
-"""Places, in the local variable, at which limits are looked at between the points."""
-CLOSE = -np.cos(np.linspace(0.0, np.pi, 65))
-"""The same for bounds of states, which need no formula: closest at the ends, where a state may just reach its bound."""
-
-
-def _add_excess(path: Trajectory, errors: Array) -> float:
-    """Count as an error how far states leave their bounds, and constraints their limits, between the points.
-
-    Returns what that may gain of the value.
-    """
-    compiled = path.program.compiled
-    lower, upper, _, _ = quantity_bounds(compiled)
-    bounded = np.isfinite(lower) | np.isfinite(upper)
-    limits = np.array([interval_of(c, constants_of(compiled)) for c in compiled.pointwise]).reshape(-1, 2)
-    unequal = limits[:, 0] < limits[:, 1]
-    if not bounded.any() and not unequal.any():
-        return 0.0
-    first, rows = path.program.layout.first[:-1], path.program.rows
-    close = basis(CLOSE, path.state_modes.shape[1] - 1) @ path.state_modes[:, :, bounded]
-    excess = np.maximum(lower[bounded] - close, close - upper[bounded]).max(axis=1, initial=0.0)
-    sizes = sizes_of(path)[0][bounded]
-    errors[:] = np.maximum(errors, (excess / sizes).max(axis=1, initial=0.0))
-    pushes = np.abs(path.bound_multipliers[path.program.layout.inner])[:, bounded]
-    gained = float((np.add.reduceat(pushes, first, axis=0) * excess).sum())
-    if unequal.any():
-        states = basis(BETWEEN, path.state_modes.shape[1] - 1) @ path.state_modes
-        bodies = _bodies_between(path, states)[:, :, unequal]
-        sizes = path.program.row_scale[rows.pointwise :][: len(limits)][unequal]
-        excess = np.nan_to_num(np.maximum(limits[unequal, 0] - bodies, bodies - limits[unequal, 1]))
-        excess = excess.max(axis=1, initial=0.0)
-        errors[:] = np.maximum(errors, (excess / sizes).max(axis=1, initial=0.0))
-        pushes = np.abs(path.row_multipliers[rows.pointwise : rows.rims]).reshape(-1, len(limits))[:, unequal]
-        gained += float((np.add.reduceat(pushes, first, axis=0) * excess).sum())
-    return gained
-
-
-def _bodies_between(path: Trajectory, states: Array) -> Array:
-    """Bodies of the pointwise constraints at `BETWEEN` in every interval (N x len(BETWEEN) x constraints)."""
-    mesh, compiled = path.program.mesh, path.program.compiled
-    lower, upper = quantity_bounds(compiled)[2:]
-    controls = basis(BETWEEN, path.control_modes.shape[1] - 1) @ path.control_modes
-    shape = (*states.shape[:2], 1)
-    starts, ends = (path.places[mesh.stretch + side][:, None, None] for side in (0, 1))
-    fractions = (mesh.starts[:, None] + mesh.widths[:, None] * (BETWEEN + 1) / 2)[:, :, None]
-    parameters = np.broadcast_to(path.parameters, (*shape[:2], len(path.parameters)))
-    constants = np.broadcast_to(np.array(compiled.constants), (*shape[:2], len(compiled.constants)))
-    v = np.concatenate([states, np.clip(controls, lower, upper), np.broadcast_to(starts, shape),
-                        np.broadcast_to(ends, shape), parameters], axis=2)  # fmt: skip
-    d = np.concatenate([fractions, constants], axis=2)
-    count = shape[0] * shape[1]
-    outputs = mapped(compiled.point.value, v.reshape(count, -1), d.reshape(count, -1))
-    first = compiled.point.states
-    return outputs[:, first : first + compiled.point.constraints].reshape(*shape[:2], -1)
 
 
 def _tails(modes: Array, lengths: Indices) -> tuple[Array, Indices]:

@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 
 from solvers.deadline import Deadline
 from solvers.problem import Problem
+from solvers.search.accumulation import one_touch_more
 from solvers.search.chatter import one_more
 from solvers.search.holding import released, shrunk, wrongly_held
 from solvers.search.joined import joined
@@ -42,6 +43,8 @@ SLOW = 0.25
 """How much of the error one more mesh must leave at the most where the structure is right."""
 MOST_CHATTER = 5
 """So many switches are added where a control chatters: each counts about a thousandth of the one before."""
+ENOUGH = 0.1
+"""How much of the tolerance a touch has to be worth to be added."""
 LEAST_DEGREE = 6
 """The least degree of intervals that are taken over."""
 CROWDED = 0.001
@@ -69,7 +72,7 @@ def sharpen(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit |
                 break
             sharp = again
         if sharp is not None and sharp.end is End.CONVERGED:
-            return sharp
+            return _with_more_touches(base, sharp, watch, deadline)
         if sharp is not None:
             found.append(sharp)
     best = min(found, key=lambda pursuit: (not pursuit.done, pursuit.value_error), default=None)
@@ -207,6 +210,26 @@ def _with_more_switches(base: Pursuit, sharp: Pursuit, watch: Watch | None, dead
     return last if last.shown or last.value_error <= sharp.value_error else sharp
 
 
+def _with_more_touches(base: Pursuit, sharp: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit:
+    """Where a state cannot come to rest on its limit at once, the same with so many touches before that that those
+    which are left out do not count any more: with one of these multipliers are but noise."""
+    last = sharp
+    for _ in range(MOST_CHATTER):
+        changed = one_touch_more(last.paths[-1])
+        if changed is None or deadline.over:
+            break
+        path = last.paths[-1]
+        pursuit = pursue(changed, watch, deadline, meshes=4, start=path, mesh=mesh_between(changed, path))
+        if pursuit.end is not End.CONVERGED or at_the_edge(pursuit.paths[-1]) or worse(pursuit, last):
+            break
+        gained = abs(pursuit.paths[-1].value - last.paths[-1].value)
+        if gained <= ENOUGH * base.problem.options.tolerance * base.value_size:
+            last.value_error += 2 * gained
+            break
+        last = pursuit
+    return last
+
+
 def mesh_between(problem: Problem, path: Trajectory) -> Mesh:
     """Few intervals where everything is held, more where a control is free; with arcs along constraints a path's own.
 
@@ -247,6 +270,12 @@ def _edges_between(path: Trajectory, start: float, end: float) -> Array:
         if edges[-1] + CROWDED < share < 1 - CROWDED:
             edges.append(float(share))
     return np.array([*edges, 1.0]) if len(edges) > 3 else np.linspace(0.0, 1.0, 5)
+
+
+def worse(found: Pursuit, base: Pursuit) -> bool:
+    """Whether the sharpened value is worse than that of the plain meshes, beyond both errors."""
+    sign = np.sign(base.paths[-1].program.value_scale)
+    return bool(sign * (found.paths[-1].value - base.paths[-1].value) > found.value_error + base.value_error)
 
 
 def agrees(found: Pursuit, base: Pursuit) -> bool:
