@@ -102,8 +102,10 @@ def _solve(stated: Problem, problem: Problem, watch: Watch | None, deadline: Dea
             torn = torn or Found(pursuit, gauged)
             deadline = deadline.within(PATIENCE * (time.process_time() - began))
         elif pursuit.solved or pursuit.end is End.STOPPED or (pursuit.end is End.TIME and torn is None):
-            cornered = _with_limited_slope(problem, watch, deadline) if gauged.graph and pursuit.solved else None
-            return Found(pursuit, gauged) if cornered is None else Found(cornered, None)
+            given = _with_limited_slope(problem, watch, deadline) if gauged.graph and pursuit.solved else None
+            if given is not None and not _better(gauged.value(pursuit.paths[-1].value), given):
+                return Found(given, None)
+            return Found(pursuit, gauged)
     pursuit = solve_as_given(with_slacks(with_widths(problem)), watch, deadline)
     if torn is not None and pursuit.end not in (End.CONVERGED, End.SETTLED, End.TORN, End.STOPPED):
         return torn
@@ -126,13 +128,20 @@ def in_original_terms(gauged: Gauged, watch: Watch | None) -> Watch | None:
 
 
 def _with_limited_slope(problem: Problem, watch: Watch | None, deadline: Deadline) -> Pursuit | None:
-    """A curve with a corner, where the slope is limited to both sides: it may jump from one limit to the other."""
-    limits = [
-        condition for condition in problem.constraints if simple_bound(condition) == (problem.unknowns[0].name, 1)
-    ]
+    """The problem as it is given where the slope is limited to both sides: then no curve stands upright, and switches
+    between the limits, or a corner from one to the other, are found in this form only."""
+    slope = problem.unknowns[0].name, 1
+    limits = [condition for condition in problem.constraints if simple_bound(condition) == slope]
     if not any(limit.lower for limit in limits) or not any(limit.upper for limit in limits):
         return None
-    return with_corner(solve_as_given(with_slacks(with_widths(problem)), watch, deadline), watch, deadline)
+    given = solve_as_given(with_slacks(with_widths(problem)), watch, deadline)
+    return with_corner(given, watch, deadline) or (given if given.end is End.CONVERGED else None)
+
+
+def _better(value: float, than: Pursuit) -> bool:
+    """Whether a value is better than that of a pursuit by more than the tolerance."""
+    sign = -1.0 if than.problem.seek is Seek.MAXIMUM else 1.0
+    return sign * (value - than.paths[-1].value) < -than.problem.options.tolerance * than.value_size
 
 
 def rightly_squared(gauged: Gauged, pursuit: Pursuit, doubtful: bool) -> bool:

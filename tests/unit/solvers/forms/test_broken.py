@@ -113,3 +113,16 @@ def test_between_limits_of_the_slope_the_longest_curve_is_a_tent():
     np.testing.assert_allclose(np.abs(found.curve.evaluate("y'", np.linspace(0.01, 0.99, 50))), 1.0, atol=1e-6)
     shortest = solve(shape(**members | {"functional": {"integrand": "sqrt(1 + y'^2)"}}))
     assert shortest.value == pytest.approx(1.0, rel=1e-8)
+
+
+def test_where_the_slope_is_limited_what_switches_is_found_as_given():
+    """(1 + y) sqrt(1 + y'^2) with |y'| <= 1: higher and steeper are both better, so the tent of the height 1/2 is the
+    best curve, worth sqrt(2) (1 + 1/4)."""
+    found = solve(shape(
+        independent={"name": "x", "from": 0, "to": 1},
+        functional={"seek": "maximum", "integrand": "(1 + y)*sqrt(1 + y'^2)"},
+        endpoints=["y(0) = 0", "y(1) = 0"],
+        constraints=["-1 <= y' <= 1"],
+    ))  # fmt: skip
+    assert found.verdict in (Verdict.LOCAL_MAXIMUM, Verdict.GLOBAL_MAXIMUM)
+    assert abs(found.value - 1.25 * np.sqrt(2)) <= found.value_error < 1e-7
