@@ -61,6 +61,12 @@ EARLY = {
 }
 """Verdicts that need no curve."""
 
+APPROACHED = (End.TORN, End.WIGGLES, End.AWAY)
+"""Ends that say of a value that curves come as near to it as one likes."""
+STANDS = 0.05
+"""How far, relative to it, such a value may be from that on other points: a spike between the points costs what they do
+not see."""
+
 PROVED = (Verdict.GLOBAL_MINIMUM, Verdict.GLOBAL_MAXIMUM)
 
 NO_OPTIMUM_FOUND = (Verdict.NOT_VERIFIED, Verdict.BEST_FOUND)
@@ -122,12 +128,16 @@ def with_evidence(
                       known=known, sampler=sampler)  # fmt: skip
     if pursuit.end is End.WIGGLES:  # the others are about how the mean is mixed
         made = tuple(check for check in made if check.name in checks.FEASIBLE)
-    if conditions.NAME not in known and np.isfinite(taken := conditions.value_anew(sampler)):
+    taken = value if conditions.NAME in known else conditions.value_anew(sampler)
+    if np.isfinite(taken):
         value_error += abs(taken - value)
     if left_open := checks.left_open(made):
         value_error += left_open * max(abs(value), abs(path.program.value_scale))
     diagnosis = with_feasibility(diagnosis, made)
     verdict = judge(problem.seek, made, pursuit.end)
+    stands = abs(taken - value) <= STANDS * max(abs(value), abs(path.program.value_scale))
+    if pursuit.end in APPROACHED and not stands:  # then nothing is approached
+        verdict, diagnosis = Verdict.NOT_VERIFIED, diagnose(replace(pursuit, end=End.FAILED, findings=()))
     if verdict in PROVED and pursuit.end in (End.TIME, End.FAR) and may_escape(pursuit):
         verdict = Verdict.BEST_FOUND  # the bound may be one that is only approached, and nobody had time to find out
     if verdict in PROVED and (gap := lower_bound.gap(made)) is not None:  # the bound says it better than the meshes
@@ -240,6 +250,7 @@ def _stretches(
 ) -> tuple[Stretch, ...]:
     """What lies between the switches; of a curve in parametric form what is said of the unknowns themselves."""
     found = stretches(pursuit.paths[-1], errors, extremal)
+    found = tuple(stretch for stretch in found if not stretch.of.startswith(SLACK + " "))
     if gauged is None or not found:
         return found
     names = {*(unknown.name for unknown in gauged.original.unknowns), *(c.label for c in gauged.original.conditions)}

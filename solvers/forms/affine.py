@@ -29,7 +29,7 @@ from solvers.formula.nodes import SIDE, At, Call, Lookup, Name, Node, Number, Su
 from solvers.formula.substitute import at_place, substitute
 from solvers.problem import Condition, Parameter, Problem, Seek
 from solvers.transcription.functions import ROUNDED
-from solvers.transcription.lowering import simple_bound
+from solvers.transcription.lowering import Quantity, simple_bound
 from solvers.undetermined import Undetermined
 
 SAME_FOR_ALL = (
@@ -85,9 +85,10 @@ def linear(tree: Node, problem: Problem) -> bool:
     return _linear(written_out(tree, problem), _slopes(problem), kinks=False)
 
 
-def linear_by_parts(tree: Node, problem: Problem) -> bool:
-    """The same, but for kinks of abs, max and min: linear between them."""
-    return _linear(written_out(tree, problem), _slopes(problem), kinks=True)
+def linear_by_parts(tree: Node, problem: Problem, quantity: Quantity | None = None) -> bool:
+    """The same, but for kinks of abs, max and min: linear between them; or only in one quantity."""
+    names = _slopes(problem) if quantity is None else [Name(*quantity)]
+    return _linear(written_out(tree, problem), names, kinks=True)
 
 
 def linear_in(tree: Node, names: Sequence[Name]) -> bool:

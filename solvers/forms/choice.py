@@ -106,13 +106,23 @@ def _solve(stated: Problem, problem: Problem, watch: Watch | None, deadline: Dea
             if given is not None and not _better(gauged.value(pursuit.paths[-1].value), given):
                 return Found(given, None)
             return Found(pursuit, gauged)
-    pursuit = solve_as_given(with_slacks(with_widths(problem)), watch, deadline)
+    pursuit = _as_stated(problem, watch, deadline)
     if torn is not None and pursuit.end not in (End.CONVERGED, End.SETTLED, End.TORN, End.STOPPED):
         return torn
     for further in (off_ridge, with_corner, with_mixture):
         if (better := further(pursuit, watch, deadline)) is not None:
             return Found(better, None)
     return Found(pursuit, None)
+
+
+def _as_stated(problem: Problem, watch: Watch | None, deadline: Deadline) -> Pursuit:
+    """The problem solved in no other form but that for its kinks."""
+    widened = with_widths(problem)
+    pursuit = solve_as_given(with_slacks(widened), watch, deadline)
+    whole = with_slacks(widened, parted=False)
+    if pursuit.end is End.TORN and whole != pursuit.problem:  # where a slope has no bound, nor have its parts
+        return solve_as_given(whole, watch, deadline)
+    return pursuit
 
 
 def in_original_terms(gauged: Gauged, watch: Watch | None) -> Watch | None:

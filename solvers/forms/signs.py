@@ -39,18 +39,26 @@ def better_below(problem: Problem) -> float:
     return -1.0 if problem.seek is Seek.MAXIMUM else 1.0
 
 
-def one_signed(problem: Problem) -> bool:
-    """Whether the integrand is proved to be nowhere negative, for a maximum nowhere positive, whatever the curve within
-    its bounds."""
+def interval(tree: Node, problem: Problem) -> tuple[float, float]:
+    """Between which values a formula is proved to lie, whatever the curve within its bounds."""
     constants = {c.name: c.value for c in problem.constants}
     try:
         first, last = (number(problem.places[k].tree, constants) for k in (0, -1))
     except KeyError:  # an end is free
         first, last = -np.inf, np.inf
-    if problem.integrand is None or not first < last:
+    if not first < last:
+        return -np.inf, np.inf
+    shape = shape_of(tree, known(problem, constants, first, last), unfolding(problem))
+    return shape.low, shape.high
+
+
+def one_signed(problem: Problem) -> bool:
+    """Whether the integrand is proved to be nowhere negative, for a maximum nowhere positive, whatever the curve within
+    its bounds."""
+    if problem.integrand is None:
         return False
-    shape = shape_of(problem.integrand, known(problem, constants, first, last), unfolding(problem))
-    return shape.high <= 0 if problem.seek is Seek.MAXIMUM else shape.low >= 0
+    low, high = interval(problem.integrand, problem)
+    return high <= 0 if problem.seek is Seek.MAXIMUM else low >= 0
 
 
 def where_defined(gauged: Gauged) -> Gauged:

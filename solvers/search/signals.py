@@ -24,6 +24,8 @@ ON_LIMIT = 1e-3
 """How near to a limit, relative to the room it leaves, a control counts as on it."""
 TOUCH = 0.02
 """How short, relative to the whole, a stay of a state on its limit counts as a touch."""
+FAINT = 1e-2
+"""Values of a quantity that moves less than this, relative to its size, are all alike."""
 STATE_ON_LIMIT = 1e-4
 """How near to a limit a state counts as on it: it may come close without resting there."""
 
@@ -49,13 +51,14 @@ class Signal:
     lower: float
     upper: float
     state: bool
+    size: float
 
     @property
     def labels(self) -> Indices:
         """-1 on the lower limit, 1 on the upper one, 0 between them, at every point."""
         room = self.upper - self.lower
         if not np.isfinite(room):
-            room = max(float(np.ptp(self.values)), 1e-300)
+            room = max(float(np.ptp(self.values)), FAINT * self.size)
         near = room * (STATE_ON_LIMIT if self.state else ON_LIMIT)
         labels = np.zeros(len(self.values), dtype=np.int64)
         labels[self.values - self.lower < near] = -1
@@ -68,12 +71,14 @@ def signals(path: Trajectory) -> list[Signal]:
     lowered = path.program.compiled.lowered
     state_lower, state_upper, control_lower, control_upper = quantity_bounds(path.program.compiled)
     found = []
-    for quantities, table, lowers, uppers, state in (
-        (lowered.controls, path.controls, control_lower, control_upper, False),
-        (lowered.states, path.states, state_lower, state_upper, True),
+    scales = path.program.scales
+    for quantities, table, lowers, uppers, state, sizes in (
+        (lowered.controls, path.controls, control_lower, control_upper, False, scales.controls),
+        (lowered.states, path.states, state_lower, state_upper, True, scales.states),
     ):
         for index, quantity in enumerate(quantities):
-            signal = Signal(quantity, table[:, index], float(lowers[index]), float(uppers[index]), state)
+            size = float(sizes[index])
+            signal = Signal(quantity, table[:, index], float(lowers[index]), float(uppers[index]), state, size)
             if signal.labels.any():
                 found.append(signal)
     return found

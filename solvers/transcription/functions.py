@@ -364,7 +364,7 @@ def with_constants(compiled: Compiled, values: Mapping[str, float]) -> Compiled:
 
 
 def linear_controls(compiled: Compiled) -> list[int]:
-    """Bounded controls in which everything is linear, by structure: those that switch or run singular."""
+    """Controls with a limit in which everything is linear, by structure: those that switch or run singular."""
     _, _, lower, upper = quantity_bounds(compiled)
     n = compiled.point.states
     own = {row for row, column in zip(compiled.point.hessian_rows, compiled.point.hessian_columns, strict=True)
@@ -372,5 +372,5 @@ def linear_controls(compiled: Compiled) -> list[int]:
     return [
         index
         for index in range(compiled.point.controls)
-        if n + index not in own and np.isfinite(upper[index] - lower[index])
+        if n + index not in own and (np.isfinite(upper[index]) or np.isfinite(lower[index]))
     ]

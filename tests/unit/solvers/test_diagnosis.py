@@ -144,6 +144,20 @@ def test_a_curve_that_is_not_feasible_yet_says_what_it_misses_and_by_how_much():
     assert "is not feasible; it misses 'x(0) = 1' by 2; 'x within its bounds' by 1; the dyn" in diagnose(found).sentence
 
 
+def test_a_search_that_ended_on_a_feasible_curve_does_not_deny_it():
+    """x = 1 at rest keeps x(0) = 1 and x' = u: a curve was reached, and none of them is the best yet."""
+    problem = stated(endpoints=["x(0) = 1"])
+    where = layout(made := compiled(problem), uniform(1, 2, 3))
+    program = make_program(made, uniform(1, 2, 3), where, first_guess(made, uniform(1, 2, 3), where).z)
+    z = 0.0 * program.scale
+    z[where.nodes[:, 0]] = z[where.inner[:, 0]] = 1.0 / program.scale[where.nodes[0, 0]]
+    found = pursuit(End.TIME)
+    found.last = program, Minimum(Outcome.TIME, z, 0.0, z, z, 1, 0.0, 0.0, "")
+    sentence = diagnose(found).sentence
+    assert "No best curve had been found by then" in sentence
+    assert "What was reached by then meets all conditions, but is not the best yet." in sentence
+
+
 def test_a_kept_curve_that_fails_its_conditions_is_said_not_to_be_feasible_yet():
     exceeded = Check("limits", Status.FAILED, "'x' is exceeded by at most 2.0e-02 of its size.", 0.02)
     other = Check("stationarity", Status.FAILED, "The costates are off.", 1.0)
