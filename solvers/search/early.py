@@ -29,6 +29,8 @@ HASTY = 30
 """Iterations within which a right structure is solved: most take less than 20."""
 FURTHER = 2
 """Meshes that a right structure is given where the second one does not suffice."""
+NEARLY = 30.0
+"""How far from the tolerance, as a factor, an error may stand still."""
 SHARE = 0.3
 """Share of the remaining time that one structure may take."""
 
@@ -102,17 +104,27 @@ def _surely(changed: Problem, base: Pursuit, watch: Watch | None, deadline: Dead
     """The problem with switches solved, where what comes of it is beyond doubt."""
     path = base.paths[-1]
     sharp = pursue(changed, watch, deadline, meshes=1, start=path, mesh=mesh_between(changed, path), iterations=HASTY)
-    if not sharp.solved or not _right(sharp, base):
+    if not sharp.solved or not _hopeful(sharp, base):
         return None
     go_on(sharp, watch, deadline, 1)
     if sharp.end is not End.CONVERGED and not slow(sharp):
         go_on(sharp, watch, deadline, FURTHER)
-    return sharp if sharp.end is End.CONVERGED and _right(sharp, base) else None
+    return sharp if (sharp.end is End.CONVERGED or _stalls(sharp)) and _right(sharp, base) else None
+
+
+def _stalls(sharp: Pursuit) -> bool:
+    """Whether finer meshes would not help: the value stands, and what is left of the error falls no further, as where a
+    singular control is known only through a state that costs little."""
+    near = (sharp.steps[-1].error or 0.0) <= NEARLY * sharp.problem.options.tolerance
+    return sharp.done and near and slow(sharp)
+
+
+def _hopeful(sharp: Pursuit, base: Pursuit) -> bool:
+    """Whether nothing speaks against a structure yet: on a coarse mesh a switch may still be far off its place."""
+    path = sharp.paths[-1]
+    whole = not at_the_edge(path) and accumulation(path) is None  # else touches are missing
+    return whole and agrees(sharp, base) and surely_held_rightly(path)
 
 
 def _right(sharp: Pursuit, base: Pursuit) -> bool:
-    path = sharp.paths[-1]
-    whole = (
-        not at_the_edge(path) and not jumps_at_breaks(path) and accumulation(path) is None
-    )  # else touches are missing
-    return whole and agrees(sharp, base) and not worse(sharp, base) and surely_held_rightly(path)
+    return _hopeful(sharp, base) and not jumps_at_breaks(sharp.paths[-1]) and not worse(sharp, base)
