@@ -61,6 +61,7 @@ def with_switches(
     is left nor a control to be calmed.
     """
     own = _own_places(problem, path)
+    found = [switch for switch in found if own[0][0] < switch.place < own[-1][0]]  # a free end may have come to one
     kept = _without_collapsed(found, float(np.ptp(path.places)))
     while True:
         spots: list[Spot] = sorted([*own, *((switch.place, switch) for switch in kept)], key=lambda spot: spot[0])

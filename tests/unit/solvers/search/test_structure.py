@@ -90,6 +90,14 @@ def test_needless_switches_are_dropped():
     assert with_switches(bang(), [], path, LINEAR) is None
 
 
+def test_a_switch_to_which_an_end_has_come_is_none():
+    """Nor is one beyond an end: it would be no place between two others."""
+    path = path_along(uniform(1, 8, 4), lambda t: t, lambda t: np.where(t < 0.5, 1.0, -1.0), bang())
+    found = switches(path, LINEAR)
+    beyond = [Switch(place, place, place) for place in (0.0, 1.0, 1.01)]
+    assert with_switches(bang(), [*found, *beyond], path, LINEAR) == with_switches(bang(), found, path, LINEAR)
+
+
 def test_singular_arcs_are_calm_and_held_arcs_are_not():
     path = path_of(lambda t: np.select([t < 0.2, t < 0.7], [1.0, 0.3], -1.0))
     changed = with_switches(bang(), switches(path, LINEAR), path, LINEAR)
