@@ -16,7 +16,7 @@ from solvers.search.holding import released, shrunk, wrongly_held
 from solvers.search.joined import joined
 from solvers.search.pursuit import go_on, pursue
 from solvers.search.record import End, Pursuit
-from solvers.search.signals import Switch, jumps_at_breaks, limited, switches
+from solvers.search.signals import SWITCH, Switch, jumps_at_breaks, limited, switches
 from solvers.search.structure import (
     Release,
     at_the_edge,
@@ -43,6 +43,8 @@ SLOW = 0.25
 """How much of the error one more mesh must leave at the most where the structure is right."""
 MOST_CHATTER = 5
 """So many switches are added where a control chatters: each counts about a thousandth of the one before."""
+MOVED = 1e-3
+"""How far, relative to the range, a switch has to be read elsewhere for its structure to be tried again."""
 ENOUGH = 0.1
 """How much of the tolerance a touch has to be worth to be added."""
 LEAST_DEGREE = 6
@@ -105,7 +107,8 @@ def with_structure(
 ) -> Pursuit | None:
     """Read switches off a path and solve with them; None where there are none or the answer is not believable.
 
-    Nor is the first structure solved again where it is one of those that were `tried`; it becomes one of them.
+    Nor is the first structure solved again where it is one of those that were `tried`, unless its switches were read
+    elsewhere: from there it may lead elsewhere.  It becomes one of them.
 
     What turns out to be held wrongly is let go, unless an arc that the mesh may have seen as two does as one.  A switch
     that ends at the edge of the room it was given is looked at again from there, and left out if it does so again: the
@@ -128,7 +131,7 @@ def with_structure(
         same = alike(changed, seen)
         if same and (again or not at_the_edge(path)):
             break
-        if round_ == 0 and any(alike(changed, other) for other in tried or ()):
+        if round_ == 0 and any(_begins_alike(changed, other, path) for other in tried or ()):
             break
         again, one = same, None
         now = pursue(changed, watch, deadline, meshes=2, start=path, mesh=mesh_between(changed, path))
@@ -186,6 +189,15 @@ def _vanishing(switch: Switch, stretches: list[tuple[float, float]]) -> bool:
 def alike(one: Problem, other: Problem) -> bool:
     """Whether two structures have the same arcs in the same order."""
     return (one.held, one.calm, len(one.places)) == (other.held, other.calm, len(other.places))
+
+
+def _begins_alike(one: Problem, other: Problem, path: Trajectory) -> bool:
+    """Whether two structures are the same, with their switches at nearly the same places to begin with."""
+    if not alike(one, other):
+        return False
+    there = {parameter.name: parameter.guess or 0.0 for parameter in other.parameters}
+    moved = (abs((p.guess or 0.0) - there[p.name]) for p in one.parameters if p.name.startswith(SWITCH + " "))
+    return max(moved, default=0.0) <= MOVED * float(np.ptp(path.places))
 
 
 def _with_more_switches(base: Pursuit, sharp: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit:

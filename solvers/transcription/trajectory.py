@@ -127,10 +127,15 @@ def trajectory(program: Program, minimum: Minimum) -> Trajectory:
         states=z[where.inner],
         controls=z[where.controls],
         costates=-defects / program.mesh.weights[:, None],
-        multipliers=constraints / (where.measures * where.lengths(places))[:, None],
+        multipliers=_per_unit(constraints, where.measures * where.lengths(places)),
         bound_multipliers=bounds * sign_and_size / scale,
         row_multipliers=rows,
     )
+
+
+def _per_unit(sums: Array, measures: Array) -> Array:
+    """Sums per unit of the measures; nothing where a stretch has come to have no length."""
+    return np.divide(sums, measures[:, None], out=np.zeros_like(sums), where=measures[:, None] != 0)
 
 
 def place_values(problem: Problem, where: Layout, z: Array) -> Array:
@@ -243,7 +248,7 @@ def _with_multipliers(z: Array, path: Trajectory, compiled: Compiled, mesh: Mesh
     old_measures = old.measures * old.lengths(path.places)
     nearest = np.searchsorted((path.points[1:] + path.points[:-1]) / 2, points)  # multipliers of bounds may jump
     for new, before in ((where.inner, old.inner), (where.controls, old.controls)):
-        bounds[new] = (pushes[before] / old_measures[:, None])[nearest] * measures[:, None]
+        bounds[new] = _per_unit(pushes[before], old_measures)[nearest] * measures[:, None]
     return Carried(z, bounds, rows)
 
 

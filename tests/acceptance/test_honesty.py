@@ -97,6 +97,12 @@ def singular_end(a):
 
 
 CASES = {
+    # bang, coast, bang: with switches after a and before T - a, a (T - a) = 1; least of 2 a + T/2 is sqrt(5)
+    "time at the end and fuel on the way": (
+        {"independent": {"name": "x", "from": 0, "to": "T"}, "parameters": {"T": {"within": [0.1, 20]}},
+         "unknowns": {"y": {}, "u": {"within": [-1, 1]}}, "dynamics": ["y'' = u"],
+         "integrand": "abs(u)", "endpoint": "T/2",
+         "endpoints": ["y(0) = 0", "y'(0) = 0", "y(T) = 1", "y'(T) = 0"]}, math.sqrt(5), LEAST),
     "an end that is hardly singular": singular_end(0.3),
     "a singular end": singular_end(0.5),
     "a more singular one": singular_end(0.6),
