@@ -45,6 +45,8 @@ def _finite_size(lower: float, upper: float) -> float:
 
 SPIKE = 0.01
 """Where the mean absolute value of a control is less than this share of the largest, it is large in a spike only."""
+SHARP = 1e-5
+"""The same where rounding, times the largest, is no longer nothing beside the mean: to a root of its digits."""
 
 SHRINKAGE = 1e-3
 """How much smaller a size may become from one mesh to the next: what tends to zero must not be blown up."""
@@ -204,7 +206,7 @@ def sizes_along(compiled: Compiled, where: Layout, scales: Scales, z: Array) -> 
     beside a singular end a slope may be as large as the end is resolved.
     """
     sizes = np.tile(scales.controls, (len(where.fractions), 1))
-    means, spikes = _spikes(where, z)
+    means, spikes = _spikes(where, z, SHARP)
     lower, upper = quantity_bounds(compiled)[2:]
     spikes = spikes & np.isinf(lower) & np.isinf(upper)
     if spikes.any():
@@ -214,11 +216,11 @@ def sizes_along(compiled: Compiled, where: Layout, scales: Scales, z: Array) -> 
     return sizes
 
 
-def _spikes(where: Layout, z: Array) -> tuple[Array, NDArray[np.bool_]]:
-    """The mean absolute value of every control, and which controls are large in a spike only."""
+def _spikes(where: Layout, z: Array, share: float = SPIKE) -> tuple[Array, NDArray[np.bool_]]:
+    """The mean absolute value of every control, and for which controls that is less than a share of the largest."""
     controls = np.abs(z[where.controls])
     means = where.measures @ controls / max(float(where.measures.sum()), 1e-300)
-    return means, (means > 0) & (means < SPIKE * controls.max(axis=0, initial=0.0))
+    return means, (means > 0) & (means < share * controls.max(axis=0, initial=0.0))
 
 
 def _row_sums(numbers: Array, rows: list[int], columns: list[int], outputs: int, sizes: Array) -> Array:

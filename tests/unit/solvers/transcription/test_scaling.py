@@ -244,13 +244,13 @@ def test_a_functional_that_vanishes_keeps_a_size():
 
 
 def test_a_spike_is_as_large_as_each_interval_has_it():
-    """u = 1e6 up to a thousandth of the range and 1 beyond, so 1e3 in the mean; with limits it keeps one size."""
-    edges = [0.0, 1e-3, 0.5, 1.0]
+    """u = 1e9 up to a millionth of the range and 1 beyond, so 1e3 in the mean; with limits it keeps one size."""
+    edges = [0.0, 1e-6, 0.5, 1.0]
     mesh = Mesh(tuple(interval(0, left, right, Family.RADAU, 4) for left, right in pairwise(edges)))
-    for limits, beyond in (({}, 1e3), ({"within": [-2e6, 2e6]}, 1e6)):
+    for limits, beyond in (({}, 1e3), ({"within": [-2e9, 2e9]}, 1e9)):
         functions = compiled(stated(unknowns={"x": {}, "u": limits}))
         where = layout(functions, mesh)
         z = np.ones(where.size)
-        z[where.controls[:4]] = 1e6
+        z[where.controls[:4]] = 1e9
         along = sizes_along(functions, where, find_scales(functions, where, z), z)[:, 0]
-        np.testing.assert_allclose(along, np.repeat([1e6, beyond], [4, 8]), rtol=2e-3)
+        np.testing.assert_allclose(along, np.repeat([1e9, beyond], [4, 8]), rtol=2e-3)
