@@ -52,7 +52,7 @@ def rejoin(beside: Beside, found: Solution) -> Solution:
         extremals=tuple(replace(one, solution=rejoin(beside, one.solution)) for one in found.extremals),
         changes=changes,
         fit=None if found.fit is None else _fit(beside, found.fit),
-        switches=tuple(sorted(set(_switches(beside, found, where)), key=lambda switch: switch.place)),
+        switches=tuple(sorted(_switches(beside, found, where), key=lambda switch: switch.place)),
         stretches=_stretches(beside, found, where),
     )
 
@@ -167,13 +167,17 @@ def _check(beside: Beside, check: Check, where: Where) -> Check:
     return replace(check, place=where.at(piece, check.place), subject=beside.by_arc(check.subject), sentence=sentence)
 
 
-def _switches(beside: Beside, found: Solution, where: Where) -> Iterator[SwitchPlace]:
+def _switches(beside: Beside, found: Solution, where: Where) -> list[SwitchPlace]:
+    """Each switch at the place of the arc whose unknowns it is about: of several of one arc it is one switch."""
+    told: dict[float, SwitchPlace] = {}
     for switch in found.switches:
         for name, piece in map(beside.parted, switch.of):
             at = where.at(piece, switch.place)
             if piece is not None and at is not None:
-                error = where.error(piece, switch.place, switch.error, found.curve_error)
-                yield SwitchPlace(at, frozenset({name}), error or 0.0)
+                error = where.error(piece, switch.place, switch.error, found.curve_error) or 0.0
+                same = told.get(at, SwitchPlace(at, frozenset(), 0.0))
+                told[at] = SwitchPlace(at, same.of | {name}, max(error, same.error))
+    return list(told.values())
 
 
 def _stretches(beside: Beside, found: Solution, where: Where) -> tuple[Stretch, ...]:

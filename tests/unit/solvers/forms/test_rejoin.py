@@ -145,3 +145,25 @@ def test_a_sweep_and_its_slopes_are_told_for_arcs_too():
     slope = next(slope.slope for slope in swept.slopes if slope.constant == "shell")
     low, high = (point.value for point in swept.sweep)
     assert (high - low) / 40 == pytest.approx(slope, rel=2e-2)
+
+
+def test_what_switches_together_switches_once():
+    """x' = u with u from -1 to 1, least integral of x^2 from 1 to 1, x >= 1/4 on the second arc.
+
+    Closed form: down to x = 0 at t = 1, there until x has to rise to 1/4 at t = 3/2, along 1/4 until it has to rise to 1
+    at t = 3.  At t = 9/4 both u and the limit of x change.  The value is that of the four pieces.
+    """
+    arcs = [{"name": "a", "from": 0, "to": 1.5}, {"name": "b", "from": 1.5, "to": 3, "constraints": ["x >= 0.25"]}]
+    found = solve(
+        stating.stated(
+            independent={"name": "t", "from": 0, "to": 3},
+            unknowns={"x": {}, "u": {"within": [-1, 1]}},
+            dynamics=["x' = u"],
+            functional={"seek": "minimum", "integrand": "x^2"},
+            endpoints=["x(0) = 1", "x(3) = 1"],
+            arcs=arcs,
+        )
+    )
+    assert found.value == pytest.approx(1 / 3 + 0.25**3 / 3 + 0.75 / 16 + (1 - 0.25**3) / 3, abs=1e-7)
+    assert [switch.place for switch in found.switches] == pytest.approx([1, 5 / 4, 9 / 4], abs=1e-6)
+    assert found.switches[-1].of == {"x", "u"}
