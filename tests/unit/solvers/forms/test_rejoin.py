@@ -150,8 +150,8 @@ def test_a_sweep_and_its_slopes_are_told_for_arcs_too():
 def test_what_switches_together_switches_once():
     """x' = u with u from -1 to 1, least integral of x^2 from 1 to 1, x >= 1/4 on the second arc.
 
-    Closed form: down to x = 0 at t = 1, there until x has to rise to 1/4 at t = 3/2, along 1/4 until it has to rise to 1
-    at t = 3.  At t = 9/4 both u and the limit of x change.  The value is that of the four pieces.
+    Closed form: down to x = 0 at t = 1, there until x has to rise to 1/4 at t = 3/2, along 1/4 until it has to rise to
+    1 at t = 3.  At t = 9/4 both u and the limit of x change.  The value is that of the four pieces.
     """
     arcs = [{"name": "a", "from": 0, "to": 1.5}, {"name": "b", "from": 1.5, "to": 3, "constraints": ["x >= 0.25"]}]
     found = solve(
