@@ -39,6 +39,7 @@ _REASONS = {
     "undefined": ("A formula has no value or no finite derivatives where the search begins", ""),
     "out of time": ("The time limit ended the search", ""),
     "out of reach": ("Finer meshes hardly help", ""),
+    "finest mesh": ("The mesh cannot get finer", ""),
     "stopped": ("Stopped before the end", "Edit the problem or solve it again as it is."),
     "unbounded": ("The value runs away", ""),
     "degenerates": (
