@@ -174,12 +174,12 @@ def with_evidence(
     loose = () if found.reduced is None else found.reduced.undetermined
     if not brief and not loose:
         loose = _undetermined(problem, path, gauged, made, value_error)
-    known_names = {unknown.name for unknown in problem.unknowns}  # not those of auxiliary ones
-    kept = {name: functions for name, functions in shape.functions.items() if name.rstrip("'") in known_names}
+    plain = pursuit.end is not End.WIGGLES  # what is mixed is no control of the problem
+    own = {unknown.name for unknown in (problem if gauged is None else gauged.problem).unknowns}  # no auxiliary ones
+    kept = {name: functions for name, functions in shape.functions.items() if name.rstrip("'") in own}
     fitted = None if brief else fit(path)
     notes = () if brief else (*_notes(problem, found, pursuit), *([left_out] if left_out else []))
     errors = place_errors(pursuit)
-    plain = pursuit.end is not End.WIGGLES  # what is mixed is no control of the problem
     switches = _switches(pursuit, gauged, errors) if plain else ()
     open_ones = {one.name for one in loose if one.place is None}  # nothing says what these do
     courses = _stretches(pursuit, gauged, errors, verdict not in NO_OPTIMUM_FOUND) if plain and not brief else ()
