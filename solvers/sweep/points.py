@@ -35,7 +35,7 @@ ORDER = (
 WEAK = (None, Verdict.NOT_VERIFIED, Verdict.BEST_FOUND, Verdict.NOT_A_MINIMUM, Verdict.NOT_A_MAXIMUM)
 """Verdicts after which a point is looked for from elsewhere, and at last given a solve of its own."""
 
-REPAIR = 2.0
+REPAIR = 5.0
 """How many times the work of the problem as it stands a repair may take: a solve from nothing comes next."""
 FAIR = 3.0
 """How many times its even share of the time left a point may take to be repaired, and to be solved from nothing."""
