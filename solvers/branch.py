@@ -4,9 +4,10 @@ The optimality system on the mesh, with what binds as equalities, is solved toge
 unknown and the length along the branch as one more equation, so that nothing is singular at a fold.  Along the branch
 go Newton's steps from a predictor along the tangent; a fold lies where the constant turns back.
 
-Where a limit begins or ceases to bind before any fold, the minimiser finds the limits that are active a little further
-on, and the branch goes on from there if the curve has hardly changed.  Behind a fold solutions need be no minima: there
-the branch ends at such a limit.
+Where a limit begins or ceases to bind before any fold, the solution a little further on is found as one of a sweep is,
+whatever limits are active there, and the branch goes on from there if the curve has hardly changed.  Where these change
+at every such step it is a branch all the same: of points each of which is found so.  Behind a fold solutions need be no
+minima: there the branch ends at such a limit.
 
 Reference: Keller (1977), Numerical solution of bifurcation and nonlinear eigenvalue problems, in: Applications of
 Bifurcation Theory (pseudo-arclength; from memory).
@@ -14,7 +15,7 @@ Bifurcation Theory (pseudo-arclength; from memory).
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass, replace
 from typing import Any
 
@@ -24,16 +25,16 @@ from numpy.typing import NDArray
 from solvers.answers.response import Response, SingularError
 from solvers.answers.sensitivity import limit_shifts
 from solvers.deadline import Deadline
-from solvers.minimise.ipopt import Minimum, Outcome, minimise
+from solvers.minimise.ipopt import Minimum, Outcome
 from solvers.minimise.newton import within_limits
 from solvers.problem import Seek
 from solvers.search import refinement
-from solvers.search.attempt import SOLVED, make_program
+from solvers.search.attempt import make_program
 from solvers.solution import Branch, BranchPoint
 from solvers.transcription.functions import with_constants
 from solvers.transcription.layout import layout
 from solvers.transcription.program import Program, restated
-from solvers.transcription.trajectory import Trajectory, as_start, carry, slopes_of, trajectory
+from solvers.transcription.trajectory import Trajectory, carry, distance, slopes_of, trajectory
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]
@@ -49,40 +50,63 @@ CLOSE = 1e-10
 RESTART = 0.01
 """Length of a step below which a limit is taken to be in the way."""
 FURTHER = (0.01, 0.03)
-"""How far on, relative to the constant, the minimiser looks for the limits that are active then."""
-SAME_CURVE = 0.1
-"""How much the scaled variables may change meanwhile (root mean square): else it found another curve."""
+"""How far on, relative to the constant, a solution is looked for whose limits are others."""
+SAME_CURVE = 0.2
+"""How far the states may move meanwhile, relative to their size: else it is another curve."""
 QUICK = 3
 """Newton's steps up to which the next step along the branch may be longer."""
 
 
 @dataclass(frozen=True, slots=True)
 class _At:
-    """A point with its tangent: of the free variables and the active rows (scaled), then of the constant."""
+    """A point with its tangent: of the free variables and the active rows (scaled), then of the constant.
+
+    None where it is not determined, as where a limit just begins to bind.
+    """
 
     path: Trajectory
     at: float
-    tangent: Array
+    tangent: Array | None
+
+    @property
+    def way(self) -> float:
+        """How the constant changes along the branch."""
+        return 0.0 if self.tangent is None else float(self.tangent[-1])
+
+
+Onward = Callable[[Trajectory, float, float], Iterator[Trajectory]]
+"""The solutions that are found from a path, for a value of the constant (SI), for another value of it."""
 
 
 def follow(
-    path: Trajectory, constant: str, to: float, deadline: Deadline, stop: Callable[[BranchPoint], bool]
+    path: Trajectory,
+    constant: str,
+    to: float,
+    onward: Onward,
+    deadline: Deadline,
+    stop: Callable[[BranchPoint], bool],
 ) -> Branch:
     """The branch through a solved path, from the constant's own value towards `to` (SI) and back behind a fold.
 
-    `stop` hears of every point and ends the branch where it says so.  The path's mesh is made finer first: the curve
-    changes along the branch.
+    `onward` finds solutions where other limits bind.  `stop` hears of every point and ends the branch where it says so.
+    The path's mesh is made finer first: the curve changes along the branch.
     """
-    return _Follower(path, constant, to, deadline, stop).branch()
+    return _Follower(path, constant, to, onward, deadline, stop).branch()
 
 
 class _Follower:
     def __init__(
-        self, path: Trajectory, constant: str, to: float, deadline: Deadline, stop: Callable[[BranchPoint], bool]
+        self,
+        path: Trajectory,
+        constant: str,
+        to: float,
+        onward: Onward,
+        deadline: Deadline,
+        stop: Callable[[BranchPoint], bool],
     ) -> None:
         self.names = [c.name for c in path.program.compiled.lowered.problem.constants]
         self.constant, self.index, self.to = constant, self.names.index(constant), to
-        self.deadline, self.stop = deadline, stop
+        self.onward, self.deadline, self.stop = onward, deadline, stop
         self.began = path.program.compiled.constants[self.index]
         self.size = max(abs(self.began), abs(to), 1e-300)
         self.path = _finer(path)
@@ -100,48 +124,51 @@ class _Follower:
         return Branch(self.constant, tuple(self.points), tuple(self.folds), end, self.error)
 
     def _followed(self) -> str:
-        try:
-            first = self._corrected(self.path, self.began, None, 0.0)
-        except SingularError:
-            first = None
-        way = float(np.sign(self.to - self.began))
-        here = self._begun_beside(way) if first is None else _turned(first[0], way)
-        if here is None:
-            return "The branch could not be begun: the solution is singular already, or a limit just begins to bind."
-        step = FIRST_STEP
+        here, step = self._here(self.path, self.began), FIRST_STEP
+        alone: _At | None = None  # the point beyond which nothing was found where other limits bind
         if self._add(here):
             return "Stopped."
         while len(self.points) < POINTS:
             if self.deadline.over:
                 return "The time limit was reached."
             found = self._next(here, step)
-            if found is None and step > RESTART >= step / 2 and (beyond := self._restarted(here)) is not None:
-                self.crossed += 1
-                found = beyond, QUICK
-                step = FIRST_STEP
+            if found is None and here is not alone and (here.tangent is None or step <= RESTART):
+                beyond = self._restarted(here)
+                if beyond is None:
+                    alone = here
+                else:
+                    self.crossed += 1
+                    found, step = (beyond, QUICK), FIRST_STEP
             if found is None:
-                if step <= SHORTEST:
+                if here.tangent is None or step <= SHORTEST:
                     return self._stuck()
                 step /= 2
                 continue
             there, count = found
-            if there.tangent[-1] * here.tangent[-1] < 0:
+            if there.way * here.way < 0:
                 self._fold(here, there, step)
-            if self._beyond(there):
-                return "The branch reaches the value asked for." if self._past(there) else "The branch has come back."
+            if self._past(there):
+                self._add_last(there)
+                return "The branch reaches the value asked for."
+            if self._behind(there):
+                return "The branch has come back."
             here = there
             if self._add(here):
                 return "Stopped."
             step = min(step * (1.5 if count <= QUICK else 1.0 if count <= QUICK + 2 else 0.6), LONGEST)
         return self._unfinished(here)
 
-    def _begun_beside(self, way: float) -> _At | None:
-        """The first point minimised anew; where a limit just begins to bind at a point there, a little further on."""
-        for share in (0.0, *FURTHER):
-            found = self._minimised(self.path, self.began + way * share * self.size, way)
-            if found is not None:
-                return found
-        return None
+    def _here(self, path: Trajectory, at: float) -> _At:
+        """A solution with its tangent, if it has one, towards the value that is asked for."""
+        try:
+            found = self._corrected(path, at, None, 0.0)
+        except SingularError:
+            found = None
+        if found is None:
+            return _At(path, at, None)
+        point, way = found[0], float(np.sign(self.to - self.began))
+        assert point.tangent is not None
+        return point if point.way * way >= 0 else replace(point, tangent=-point.tangent)
 
     def _unfinished(self, here: _At) -> str:
         """That the branch may go on, and how to follow it on."""
@@ -163,36 +190,26 @@ class _Follower:
         """The branch a little further on, with the limits that are active there; None where it is not found again."""
         if self.folds or here.path.program.compiled.lowered.problem.seek is Seek.STATIONARY:
             return None
-        way = float(np.sign(here.tangent[-1]))
+        way = float(np.sign(self.to - self.began))
         for share in FURTHER:
             at = here.at + way * share * self.size
-            if (at - self.to) * way > 0:
-                at = self.to
-            found = self._minimised(here.path, at, way)
-            if found is not None:
-                change = (found.path.z - here.path.z) / here.path.program.scale
-                if np.sqrt(np.mean(change**2)) <= SAME_CURVE:
-                    return found
+            at = self.to if (at - self.to) * way > 0 else at
+            for path in self.onward(here.path, here.at, at):
+                if distance(path, here.path) <= SAME_CURVE:
+                    return self._here(path, at)
         return None
-
-    def _minimised(self, path: Trajectory, at: float, way: float) -> _At | None:
-        """The minimum near a path for a value of the constant, corrected with the limits that are active there."""
-        program = restated(path.program, with_constants(path.program.compiled, {self.constant: at}))
-        minimum = minimise(program, as_start(path), deadline=self.deadline)
-        if minimum.outcome not in SOLVED:
-            return None
-        try:
-            found = self._corrected(trajectory(program, minimum), at, None, 0.0)
-        except SingularError:
-            return None
-        return None if found is None else _turned(found[0], way)
 
     def _past(self, point: _At) -> bool:
         return bool((point.at - self.to) * np.sign(self.to - self.began) >= 0)
 
-    def _beyond(self, point: _At) -> bool:
-        behind = (point.at - self.began) * np.sign(self.to - self.began) < 0
-        return self._past(point) or bool(behind and self.folds)
+    def _behind(self, point: _At) -> bool:
+        return bool(self.folds and (point.at - self.began) * np.sign(self.to - self.began) < 0)
+
+    def _add_last(self, beyond: _At) -> None:
+        """Keep the point for the very value that was asked for, next to one beyond it."""
+        last = beyond if beyond.at == self.to else self._here(beyond.path, self.to)
+        if last is beyond or last.tangent is not None:
+            self._add(last)
 
     def _add(self, point: _At) -> bool:
         """Keep a point; whether to stop there."""
@@ -205,14 +222,14 @@ class _Follower:
 
     def _fold(self, before: _At, after: _At, step: float) -> None:
         """Where between two points the constant turns: false position on its share of the tangent."""
-        low, high = (0.0, before.tangent[-1]), (step, after.tangent[-1])
-        best = min(before, after, key=lambda point: abs(point.tangent[-1]))
+        low, high = (0.0, before.way), (step, after.way)
+        best = min(before, after, key=lambda point: abs(point.way))
         for _ in range(STEPS):
             length = low[0] - low[1] * (high[0] - low[0]) / (high[1] - low[1])
             found = self._next(before, length)
             if found is None:
                 break
-            share = found[0].tangent[-1]
+            share = found[0].way
             best = found[0]
             if abs(share) < 1e-7:
                 break
@@ -221,6 +238,8 @@ class _Follower:
 
     def _next(self, here: _At, step: float) -> tuple[_At, int] | None:
         """The point at a distance along the branch, with the number of Newton's steps; None where there is none."""
+        if here.tangent is None:
+            return None
         try:
             return self._corrected(here.path, here.at, here.tangent, step)
         except SingularError:
@@ -265,11 +284,6 @@ class _Follower:
         z = np.where(before.sides < 0, program.lower, np.where(before.sides > 0, program.upper, z))
         z[free], rows[before.active] = vector[: len(free)], vector[len(free) : -1]
         return _at_variables(program, z, rows, before.sides != 0)
-
-
-def _turned(point: _At, way: float) -> _At:
-    """The point with its tangent this way along the constant."""
-    return point if point.tangent[-1] * way >= 0 else replace(point, tangent=-point.tangent)
 
 
 def _bordered(matrix: Any, column: Array, row: Array) -> Callable[[Array], Array]:

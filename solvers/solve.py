@@ -31,6 +31,7 @@ from solvers.search.structure import at_the_edge
 from solvers.solution import BranchPoint, Progress, Solution, Watch
 from solvers.starts.extremals import solve_from_starts
 from solvers.starts.together import IN_TURN, Together
+from solvers.sweep.onward import onward
 from solvers.sweep.points import sweep
 from solvers.sweep.repair import without_contacts
 from solvers.sweep.tools import Tools
@@ -108,7 +109,7 @@ def _from_starts(
     if problem.sweeps and found is not None:
         solution = _with_sweep(solution, problem, found, watch, deadline, form)
     if problem.continuation is not None and found is not None:
-        solution = _with_branch(solution, problem.continuation, found, watch, deadline)
+        solution = _with_branch(solution, problem, problem.continuation, found, watch, deadline, form)
     return solution
 
 
@@ -138,7 +139,13 @@ def _told(
 
 
 def _with_branch(
-    solution: Solution, continuation: Continuation, found: Found, watch: Watch | None, deadline: Deadline
+    solution: Solution,
+    problem: Problem,
+    continuation: Continuation,
+    found: Found,
+    watch: Watch | None,
+    deadline: Deadline,
+    form: Form,
 ) -> Solution:
     """The solution with the branch through it."""
     if not found.pursuit.solved:
@@ -155,7 +162,8 @@ def _with_branch(
         return found_value if found.gauged is None else found.gauged.value(found_value)
 
     path = unambiguous(without_contacts(found.pursuit, deadline))
-    branch = follow(path, continuation.constant, continuation.to, deadline, stop)
+    further = onward(problem, continuation.constant, found, _tools(form), deadline)
+    branch = follow(path, continuation.constant, continuation.to, further, deadline, stop)
     points, folds = (tuple(replace(p, value=value(p.value)) for p in some) for some in (branch.points, branch.folds))
     times = {**solution.times, "continuation": time.perf_counter() - began}
     return replace(solution, branch=replace(branch, points=points, folds=folds), times=times)
@@ -166,7 +174,12 @@ def _with_sweep(
 ) -> Solution:
     """The solution with the points of the sweep."""
     began = time.perf_counter()
-    tools = Tools(
+    points = sweep(problem, found, _tools(form), watch, deadline)
+    return replace(solution, sweep=points, times={**solution.times, "sweep": time.perf_counter() - began})
+
+
+def _tools(form: Form) -> Tools:
+    return Tools(
         alone=lambda other, room: solve_in_best_form(other, None, room, form),
         judge=lambda other, at, drawn, known: with_evidence(
             other, at, time.perf_counter(), brief=True, drawn=drawn, known=known
@@ -177,5 +190,3 @@ def _with_sweep(
         off_saddle=lambda other, at, told, room: off_saddle(other, at, None, room) if on_saddle(told) else None,
         form=form,
     )
-    points = sweep(problem, found, tools, watch, deadline)
-    return replace(solution, sweep=points, times={**solution.times, "sweep": time.perf_counter() - began})

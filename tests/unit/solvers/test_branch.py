@@ -1,11 +1,15 @@
 """A branch followed around its folds, against published values and closed forms."""
 
+import json
 from dataclasses import replace
 
 import numpy as np
 import pytest
 from scipy.optimize import brentq
 
+from service import samples
+from service.assemble import assemble
+from service.spec import read
 from solvers.problem import Continuation
 from solvers.solve import solve
 from tests.unit.solvers.problems import shape, stated
@@ -126,3 +130,25 @@ def test_a_branch_begins_from_an_arc_along_a_constraint():
         t = brentq(lambda t, c=c: c * np.exp(t) * (2 - t) - c - end, 0.0, 1.0)
         value = c**2 * ((np.exp(2 * t) - 1) / 2 + (1 - t) * np.exp(2 * t))
         assert point.value == pytest.approx(value, abs=1e-5)
+
+
+def around_a_hatch(reach):
+    """The shortest way between two points of the plane around a round obstacle: two tangents and an arc."""
+    radius, (x, y) = 1.4, (1.4 * np.radians(70), 1.2)
+    ends = [(-x, 0.5 - y), (radius * np.radians(140) - x, 2.3 - y)]
+    distances = [np.hypot(*end) for end in ends]
+    between = abs(np.arctan2(*ends[0][::-1]) - np.arctan2(*ends[1][::-1]))
+    angle = min(between, 2 * np.pi - between) - sum(np.arccos(reach / d) for d in distances)
+    return sum(np.sqrt(d**2 - reach**2) for d in distances) + reach * angle
+
+
+@pytest.mark.parametrize("to", (0.5, 0.42))
+def test_a_branch_whose_limits_bind_elsewhere_at_every_point(to):
+    """The conduit around a hatch that grows or shrinks: it leaves the hatch elsewhere each time."""
+    document = samples.load("conduit") | {"continuation": {"constant": "reach", "to": to}}
+    branch = solve(assemble(read(json.dumps(document).encode()))).branch
+    assert branch.end.startswith("The branch reaches the value asked for. On the way limits began or ceased to bind")
+    assert (branch.points[0].at, branch.points[-1].at) == (0.45, to)
+    assert len(branch.points) > 5
+    for point in branch.points:
+        assert point.value == pytest.approx(around_a_hatch(point.at), rel=1e-6)
