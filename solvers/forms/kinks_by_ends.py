@@ -12,6 +12,8 @@ from dataclasses import dataclass, replace
 from itertools import chain
 from typing import TYPE_CHECKING
 
+import numpy as np
+
 from solvers.forms.kinks import Kinks, free_places
 from solvers.formula.nodes import Name, Node, Number, Sum
 from solvers.problem import Condition, Place, Problem
@@ -41,7 +43,9 @@ def by_ends(problem: Problem, solve: Callable[[Problem], Found]) -> Found | None
     """The solution of a problem with a free place and given kinks, with places at these; None where that fails."""
     if problem.arcs or problem.sweeps or problem.continuation or not (bent_uses(problem) and free_places(problem)):
         return None
-    waiting, seen, passed = [_first_places(problem)], set[tuple[str, ...]](), [""]
+    waiting, seen = [_first_places(problem)], set[tuple[str, ...]]()
+    passed: list[str] = []
+    before: Found | None = None
     while waiting and len(seen) < TURNS:
         cell = _Cell(problem, waiting.pop())
         if len(bent_uses(cell.problem)) == len(bent_uses(problem)):
@@ -54,10 +58,17 @@ def by_ends(problem: Problem, solve: Callable[[Problem], Found]) -> Found | None
             waiting += cell.beside
             continue
         values, pressed = cell.moved(_places(problem, found))
-        if not pressed or pressed == passed:  # also from the other side
+        if not pressed:
             return found
-        waiting, passed = [values], pressed
+        if before is not None and pressed == passed:  # also from the other side: it lies there
+            return max(before, found, key=_shortest)
+        waiting, passed, before = [values], pressed, found
     return None
+
+
+def _shortest(found: Found) -> float:
+    """The length of the shortest stretch: on one side of the kink that a place lies on there may be none."""
+    return float(np.diff(found.pursuit.paths[-1].places).min())
 
 
 def _first_places(problem: Problem) -> list[float]:

@@ -11,6 +11,7 @@ from solvers.search.pursuit import MESHES, go_on, pursue
 from solvers.search.record import End, Pursuit
 from solvers.search.sharpen import sharpen, with_structure, worse
 from solvers.search.signals import jumps_at_breaks
+from solvers.search.touches import parted
 from solvers.solution import Watch
 from solvers.transcription.functions import linear_controls
 from solvers.transcription.trajectory import Trajectory
@@ -50,7 +51,8 @@ def solve_as_given(
         sharp = _after(pursuit, sharp)
         if sharp.end is End.TIME and not deadline.over and sharp.value_met_before:
             sharp.end = End.SETTLED  # the room for this search was over, not the time of the run
-        if not worse(sharp, pursuit) and (sharp.end is End.CONVERGED or (sharp.end is End.SETTLED and sharp.shown)):
+        settled = sharp.end is End.SETTLED and sharp.shown and parted(sharp.paths[-1]) is None
+        if not worse(sharp, pursuit) and (sharp.end is End.CONVERGED or settled):
             return sharp
     clear = _on_finer_meshes(pursuit, watch, deadline)
     if clear is not None:

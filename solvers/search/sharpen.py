@@ -38,7 +38,9 @@ Array = NDArray[np.float64]
 SOFTNESS = (1e-3, 1e-5)
 """Weights of the softened problems that are tried in turn."""
 ROUNDS = 3
-"""How often the structure is read again off a sharpened path."""
+"""How often the structure is read again off a sharpened path ..."""
+PARTINGS = 3
+"""... and how often besides touches are parted from the switches beside them."""
 SLOW = 0.25
 """How much of the error one more mesh must leave at the most where the structure is right."""
 MOST_CHATTER = 5
@@ -119,7 +121,10 @@ def with_structure(
     loose: list[Release] = []
     one: Problem | None = None
     seen, pursuit, again = path.program.compiled.lowered.problem, None, False
-    for round_ in range(ROUNDS):
+    partings = 0
+    for round_ in range(ROUNDS + PARTINGS):
+        if round_ - partings >= ROUNDS:
+            break
         found = sorted([*switches(path, linear), *present_switches(path)], key=lambda switch: switch.place)
         changed = one or with_switches(base.problem, found, path, linear, loose)
         if again and changed is not None and alike(changed, seen):
@@ -152,8 +157,9 @@ def with_structure(
                 loose += released(path, wrong)
             continue
         pursuit = now
-        apart = parted(path)
+        apart = parted(path) if partings < PARTINGS else None
         if apart is not None:
+            partings += 1
             one = with_switches(base.problem, apart, path, linear, loose)
             continue
         if not jumps_at_breaks(path) and (now.end is End.CONVERGED or not slow(now)):

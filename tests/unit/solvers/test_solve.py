@@ -212,11 +212,11 @@ def test_where_there_is_no_optimum(members, verdict, reason):
 
 
 def test_out_of_time_keeps_the_best_curve():
-    solution = solve(stated(**CHATTERING, solve={"time_limit": 1.0, "tolerance": 1e-10}))
+    solution = solve(stated(**CHATTERING, solve={"time_limit": 0.3, "tolerance": 1e-10}))
     assert solution.diagnosis.reason == "out of time"
     assert solution.curve is not None
     assert solution.value == pytest.approx(0.764, rel=0.05)
-    assert solution.times["solve"] < 1.0 + 2.0  # the machine may be busy
+    assert solution.times["solve"] < 0.3 + 2.0  # the machine may be busy
 
 
 def test_a_stop_keeps_the_best_curve():
