@@ -187,10 +187,11 @@ def _smooth(tree: Node) -> bool:
 
 
 def _linear(tree: Node, slopes: Sequence[Name], kinks: bool) -> bool:
-    """Whether all second derivatives by the slopes vanish, by the algebra alone."""
+    """Whether all second derivatives by the slopes vanish, by the algebra alone: of functions with slopes inside only
+    those with kinks are straight anywhere."""
     for node in walk(tree):
-        bent = isinstance(node, Call) and node.function in ROUNDED
-        if bent and any(part in slopes for part in walk(node)) and not kinks:
+        bent = isinstance(node, Call) and not (kinks and node.function in ROUNDED)
+        if bent and any(part in slopes for part in walk(node)):
             return False
     found = [derivative(tree, slope) for slope in slopes]
     return all(derivative(one, slope) == ZERO for k, one in enumerate(found) for slope in slopes[k:])

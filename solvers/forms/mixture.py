@@ -49,6 +49,8 @@ def with_mixture(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Purs
     problem = base.problem
     if not base.solved or problem.seek is Seek.STATIONARY or problem.observations or problem.arcs:
         return None
+    if not all(linear_in(rate, _moving(problem)) for rate in _rates(problem)):  # else a mixture acts otherwise
+        return None
     path = base.paths[-1]
     with np.errstate(all="ignore"):
         sampler = Sampler(path)
@@ -80,6 +82,11 @@ def with_mixture(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Purs
     return found
 
 
+def _rates(problem: Problem) -> list[Node]:
+    """Both sides of all lines of the dynamics."""
+    return [written_out(side, problem) for line in problem.dynamics for side in (line.left, line.right)]
+
+
 def _names(quantity: Quantity) -> tuple[str, str]:
     first, second = (f"{primed(quantity)} {copy}" for copy in COPIES)
     return first, second
@@ -92,11 +99,9 @@ def _relaxed(problem: Problem, path: Trajectory, quantity: Quantity, slopes: tup
     def holds(tree: Node) -> bool:
         return any(isinstance(node, Name) and (node.name, node.order) == quantity for node in walk(tree))
 
-    rates = [written_out(side, problem) for line in problem.dynamics for side in (line.left, line.right)]
     others = [written_out(c.body, problem) for c in problem.constraints if isinstance(c.body, Name) is False]
-    linear = all(linear_in(tree, [own]) for tree in rates)
-    even = all(linear_in(tree, _moving(problem)) for tree in rates)  # what is mixed fast acts as its mean does
-    if problem.integrand is None or not linear or not even or any(holds(tree) for tree in others):
+    linear = all(linear_in(rate, [own]) for rate in _rates(problem))
+    if problem.integrand is None or not linear or any(holds(tree) for tree in others):
         return None
     if problem.integrals and any(holds(written_out(c.body, problem)) for c in problem.integrals):
         return None

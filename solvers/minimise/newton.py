@@ -32,6 +32,8 @@ CRAWLED = 0.95
 STRAIGHT = 6
 FALL = 0.2
 """Whole steps that are tried, and how far each must let the residual fall."""
+RISE = 1e3
+"""How far the first step may let it rise where it has to find the multipliers."""
 BINDING = 1e-7
 """Multipliers (scaled) of limits that count as binding."""
 REGULAR = 1e-12
@@ -113,7 +115,7 @@ def straight_to(program: Program, start: Start, watch: Callable[[Iterate], bool]
             if not within_limits(program, z) or not np.isfinite(value):  # slopes may have values where it has none
                 return None
             return Minimum(Outcome.SOLVED, z, value, np.zeros(len(z)), multipliers, count + 1, seconds, 0.0, "Newton")
-        if not size <= (FALL * before if known or count else np.inf):
+        if not size <= (FALL if known or count else RISE) * before:
             return None
     return None
 
@@ -132,10 +134,10 @@ class _System:
 
     @cached_property
     def _regular(self) -> Any:
-        from scipy.sparse import diags_array
+        from scipy.sparse import csc_matrix
 
         signs = np.concatenate([np.ones(len(self.free)), -np.ones(len(self.equal))])
-        return diags_array(REGULAR * signs, format="csc")
+        return csc_matrix((REGULAR * signs, np.arange(len(signs)), np.arange(len(signs) + 1)))
 
     def value(self, z: Array) -> float:
         return self.program.numbers.value(z)
