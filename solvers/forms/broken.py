@@ -29,6 +29,7 @@ from solvers.search.record import End, Pursuit
 from solvers.search.signals import SWITCH
 from solvers.solution import Status, Watch
 from solvers.transcription.evaluation import mapped
+from solvers.transcription.lowering import Quantity
 from solvers.transcription.trajectory import Trajectory
 
 Array = NDArray[np.float64]
@@ -52,7 +53,7 @@ def with_corner(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursu
     if not base.solved or not plain or len(problem.unknowns) != 1 or problem.unknowns[0].order != 1:
         return None
     path = base.paths[-1]
-    if _convex_in_the_slope(problem, float(path.places[0]), float(path.places[-1])):
+    if convex_in(problem, (problem.unknowns[0].name, 1), float(path.places[0]), float(path.places[-1])):
         return None
     with np.errstate(all="ignore"):
         sampler = Sampler(path)
@@ -77,14 +78,17 @@ def with_corner(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursu
     return best
 
 
-def _convex_in_the_slope(problem: Problem, first: float, last: float) -> bool:
+def convex_in(problem: Problem, quantity: Quantity, first: float, last: float) -> bool:
     """Whether the integrand, with all multiples of integrals that conditions hold, is proved to be convex (for a
-    maximum: concave) in the slope, whatever the rest is: then no other slope gains anything anywhere."""
+    maximum: concave) in a slope or another control, whatever the rest is: then no other value of it gains anything.
+
+    That holds for a range that runs forwards, and for controls that come in linearly in all other formulas.
+    """
     whole = known(problem, {c.name: c.value for c in problem.constants}, first, last)
-    slope, unfold = (problem.unknowns[0].name, 1), unfolding(problem)
+    unfold = unfolding(problem)
 
     def leaf(node: Name | At) -> Shape:
-        own = isinstance(node, Name) and (node.name, node.order) == slope
+        own = isinstance(node, Name) and (node.name, node.order) == quantity
         return whole(node) if own else replace(whole(node), bend=Bend.GIVEN)
 
     if problem.integrand is None or not first < last:

@@ -22,7 +22,7 @@ from solvers.checks import weierstrass
 from solvers.checks.sampling import Sampler
 from solvers.deadline import Deadline
 from solvers.forms.affine import linear_in, written_out
-from solvers.forms.broken import straight_piece
+from solvers.forms.broken import convex_in, straight_piece
 from solvers.formula.nodes import At, Call, Name, Negative, Node, Number, Product, Sum, walk
 from solvers.formula.substitute import substitute
 from solvers.problem import Equation, Problem, Seek, Unknown
@@ -52,6 +52,9 @@ def with_mixture(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Purs
     if not all(linear_in(rate, _moving(problem)) for rate in _rates(problem)):  # else a mixture acts otherwise
         return None
     path = base.paths[-1]
+    first, last = float(path.places[0]), float(path.places[-1])
+    if all(convex_in(problem, control, first, last) for control in path.program.compiled.lowered.controls):
+        return None
     with np.errstate(all="ignore"):
         sampler = Sampler(path)
         if weierstrass.check(sampler).status is not Status.FAILED:

@@ -4,13 +4,14 @@ import numpy as np
 import pytest
 
 from solvers.deadline import in_seconds
-from solvers.forms.broken import _convex_in_the_slope, _edge_over, with_corner
+from solvers.forms.broken import _edge_over, convex_in, with_corner
 from solvers.search.pursuit import pursue
 from solvers.search.structure import present_switches
 from solvers.solution import Verdict
 from solvers.solve import solve
 from tests.unit.solvers.problems import shape
 
+SLOPE = "y", 1
 WELLS = {"functional": {"integrand": "(y'^2 - 1)^2"}, "endpoints": ["y(0) = 0", "y(3) = 1"]}
 """Slopes 1 and -1 are the wells: the curve rises to 2 at x = 2, or falls to -1 at x = 1 (Bolza, 1904; from memory)."""
 
@@ -63,14 +64,14 @@ def test_no_corner_where_it_does_not_help(integrand):
     ],
 )
 def test_where_all_slopes_bend_one_way_no_corner_is_looked_for(members, convex):
-    assert _convex_in_the_slope(shape(functional=members), 0.0, 1.0) is convex
-    assert not _convex_in_the_slope(shape(functional=members), 1.0, 0.0)  # backwards the integral changes its sign
+    assert convex_in(shape(functional=members), SLOPE, 0.0, 1.0) is convex
+    assert not convex_in(shape(functional=members), SLOPE, 1.0, 0.0)  # backwards the integral changes its sign
 
 
 @pytest.mark.parametrize(("integral", "convex"), [("y^3", True), ("y'", True), ("sqrt(1 + y'^2)", False)])
 def test_integrals_count_with_multiples_of_any_sign(integral, convex):
     problem = shape(functional={"integrand": "y'^2"}, constraints=[f"integral({integral}) = 2"])
-    assert _convex_in_the_slope(problem, 0.0, 1.0) is convex
+    assert convex_in(problem, SLOPE, 0.0, 1.0) is convex
 
 
 def test_the_least_value_is_proved_and_the_corner_said():
