@@ -13,9 +13,9 @@ from solvers.search.holding import surely_held_rightly
 from solvers.search.pursuit import go_on, pursue
 from solvers.search.record import End, Pursuit
 from solvers.search.refinement import smooth_all_along
-from solvers.search.sharpen import agrees, alike, mesh_between, slow, worse
+from solvers.search.sharpen import agrees, alike, chatters, mesh_between, slow, with_more_switches, worse
 from solvers.search.signals import Switch, jumps_at_breaks, switches
-from solvers.search.structure import at_the_edge, with_switches
+from solvers.search.structure import at_the_edge, shown_by, with_switches
 from solvers.solution import Watch
 from solvers.transcription.functions import linear_controls
 from solvers.transcription.lowering import Quantity
@@ -23,9 +23,11 @@ from solvers.transcription.trajectory import Trajectory
 
 PLAIN = 3
 """Plain meshes after which more effort is due to find the switches."""
+READINGS = 2
+"""How often a structure is read after each of them: off that mesh, and off what the structure read there led to."""
 LEAST_POINTS = 4
 """So many points of the mesh must lie on every arc, or it may be none: as many as an interval of the first mesh has."""
-HASTY = 30
+HASTY = 40
 """Iterations within which a right structure is solved: most take less than 20."""
 FURTHER = 2
 """Meshes that a right structure is given where the second one does not suffice."""
@@ -46,14 +48,43 @@ def sharpened_early(base: Pursuit, watch: Watch | None, deadline: Deadline) -> P
     while base.end is End.SETTLED:
         last = len(base.paths) >= PLAIN
         changed = None if last and not linear else _clear_structure(base, linear)  # else it is looked at anyway
-        if changed is not None and not any(alike(changed, other) for other in tried):
-            tried.append(changed)
-            sharp = _surely(changed, base, watch, deadline.within(SHARE * deadline.left))
-            if sharp is not None:
-                return sharp
-        if last:
-            break
+        sharp = _with_it(changed, base, linear, tried, watch, deadline)
+        if sharp is not None or last:
+            return sharp
         go_on(base, watch, deadline, 1)
+    return None
+
+
+def _with_it(
+    changed: Problem | None,
+    base: Pursuit,
+    linear: list[Quantity],
+    tried: list[Problem],
+    watch: Watch | None,
+    deadline: Deadline,
+) -> Pursuit | None:
+    """The problem with the switches of a structure, or of what that shows itself; None where that is in doubt.
+
+    Where nothing speaks against a structure but that the error hardly falls, it lacks a switch, or all that follow
+    where a control chatters.
+    """
+    path = base.paths[-1]
+    for _ in range(READINGS):
+        if changed is None or any(alike(changed, other) for other in tried):
+            break
+        tried.append(changed)
+        room = deadline.within(SHARE * deadline.left)
+        sharp = _pursued(changed, path, base, watch, room)
+        if _surely(sharp, base):
+            return sharp
+        if not sharp.solved or not slow(sharp) or not _hopeful(sharp, base):
+            break
+        if chatters(sharp):
+            more = with_more_switches(base, sharp, watch, room)
+            if more.shown and not worse(more, base):
+                return more
+        path = sharp.paths[-1]
+        changed = with_switches(base.problem, shown_by(path, linear), path, linear)
     return None
 
 
@@ -100,16 +131,19 @@ def _points_between(path: Trajectory, low: float, high: float) -> int:
     return int(np.sum((path.points > low) & (path.points < high)))
 
 
-def _surely(changed: Problem, base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit | None:
-    """The problem with switches solved, where what comes of it is beyond doubt."""
-    path = base.paths[-1]
+def _pursued(changed: Problem, path: Trajectory, base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit:
+    """The problem with switches solved from the path that shows them, on further meshes where that is hopeful."""
     sharp = pursue(changed, watch, deadline, meshes=1, start=path, mesh=mesh_between(changed, path), iterations=HASTY)
-    if not sharp.solved or not _hopeful(sharp, base):
-        return None
-    go_on(sharp, watch, deadline, 1)
-    if sharp.end is not End.CONVERGED and not slow(sharp):
-        go_on(sharp, watch, deadline, FURTHER)
-    return sharp if (sharp.end is End.CONVERGED or _stalls(sharp)) and _right(sharp, base) else None
+    if sharp.solved and _hopeful(sharp, base):
+        go_on(sharp, watch, deadline, 1)
+        if sharp.end is not End.CONVERGED and not slow(sharp):
+            go_on(sharp, watch, deadline, FURTHER)
+    return sharp
+
+
+def _surely(sharp: Pursuit, base: Pursuit) -> bool:
+    """Whether what came of a structure is beyond doubt."""
+    return sharp.solved and (sharp.end is End.CONVERGED or _stalls(sharp)) and _right(sharp, base)
 
 
 def _stalls(sharp: Pursuit) -> bool:

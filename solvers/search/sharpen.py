@@ -16,12 +16,12 @@ from solvers.search.holding import released, shrunk, wrongly_held
 from solvers.search.joined import joined
 from solvers.search.pursuit import go_on, pursue
 from solvers.search.record import End, Pursuit
-from solvers.search.signals import SWITCH, Switch, jumps_at_breaks, limited, switches
+from solvers.search.signals import SWITCH, Switch, jumps_at_breaks, limited
 from solvers.search.structure import (
     Release,
     at_the_edge,
     first_places,
-    present_switches,
+    shown_by,
     shrinking,
     softened,
     with_switches,
@@ -48,7 +48,7 @@ MOST_CHATTER = 5
 MOVED = 1e-3
 """How far, relative to the range, a switch has to be read elsewhere for its structure to be tried again."""
 ENOUGH = 0.1
-"""How much of the tolerance a touch has to be worth to be added."""
+"""How much of the tolerance a touch has to be worth to be added, or the value's error for a further switch."""
 LEAST_DEGREE = 6
 """The least degree of intervals that are taken over."""
 CROWDED = 0.001
@@ -79,11 +79,13 @@ def sharpen(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit |
             return _with_more_touches(base, sharp, watch, deadline)
         if sharp is not None:
             found.append(sharp)
+            if chatters(sharp):  # what a softer path shows is what is continued
+                break
     best = min(found, key=lambda pursuit: (not pursuit.done, pursuit.value_error), default=None)
     if best is None:
         return None
-    more = _with_more_switches(base, best, watch, deadline)
-    return go_on(best, watch, deadline, 4) if more is best and _chatters(best) else more
+    more = with_more_switches(base, best, watch, deadline)
+    return go_on(best, watch, deadline, 4) if more is best and chatters(best) else more
 
 
 def _suffices(sharp: Pursuit) -> bool:
@@ -125,7 +127,7 @@ def with_structure(
     for round_ in range(ROUNDS + PARTINGS):
         if round_ - partings >= ROUNDS:
             break
-        found = sorted([*switches(path, linear), *present_switches(path)], key=lambda switch: switch.place)
+        found = shown_by(path, linear)
         changed = one or with_switches(base.problem, found, path, linear, loose)
         if again and changed is not None and alike(changed, seen):
             found = [switch for switch in found if not _vanishing(switch, shrinking(path))]
@@ -164,12 +166,12 @@ def with_structure(
             continue
         if not jumps_at_breaks(path) and (now.end is End.CONVERGED or not slow(now)):
             break
-    if pursuit is None or pursuit.end is End.CONVERGED or _chatters(pursuit):
+    if pursuit is None or pursuit.end is End.CONVERGED or chatters(pursuit):
         return pursuit
     return go_on(pursuit, watch, deadline, 4)
 
 
-def _chatters(pursuit: Pursuit) -> bool:
+def chatters(pursuit: Pursuit) -> bool:
     """Whether finer meshes would only show more of a chattering: the error hardly falls, and one more switch fits."""
     return slow(pursuit) and one_more(pursuit.paths[-1]) is not None
 
@@ -206,7 +208,7 @@ def _begins_alike(one: Problem, other: Problem, path: Trajectory) -> bool:
     return max(moved, default=0.0) <= MOVED * float(np.ptp(path.places))
 
 
-def _with_more_switches(base: Pursuit, sharp: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit:
+def with_more_switches(base: Pursuit, sharp: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit:
     """Where the control chatters, the same with so many switches that those after them do not count any more.
 
     What follows the last one is not refined: finer meshes would only show more of the chattering.
@@ -225,6 +227,8 @@ def _with_more_switches(base: Pursuit, sharp: Pursuit, watch: Watch | None, dead
         if pursuit.value_error > error:
             break
         last, error = pursuit, pursuit.value_error
+        if last.shown and error <= ENOUGH * base.problem.options.tolerance * last.value_size:
+            break
     return last if last.shown or last.value_error <= sharp.value_error else sharp
 
 

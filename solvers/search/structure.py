@@ -17,7 +17,7 @@ from numpy.typing import NDArray
 from solvers.formula.nodes import Name, Node, Number, Power, Product, Sum
 from solvers.problem import Calm, Held, Parameter, Place, Problem, Touch
 from solvers.search.contacts import well_begun
-from solvers.search.signals import SWITCH, Signal, Switch, limited, signals
+from solvers.search.signals import SWITCH, Signal, Switch, limited, signals, switches
 from solvers.transcription.functions import Compiled
 from solvers.transcription.lowering import Quantity
 from solvers.transcription.trajectory import Trajectory, sizes_of
@@ -168,6 +168,11 @@ def first_places(problem: Problem, path: Trajectory) -> list[float]:
     known |= {parameter.name: parameter.guess or 0.0 for parameter in problem.parameters
               if parameter.name.startswith(SWITCH + " ")}  # fmt: skip
     return [float(known[place.label]) for place in problem.places]
+
+
+def shown_by(path: Trajectory, linear: list[Quantity]) -> list[Switch]:
+    """The switches that a path shows, those that are places of it already among them, from first to last."""
+    return sorted([*switches(path, linear), *present_switches(path)], key=lambda switch: switch.place)
 
 
 def present_switches(path: Trajectory) -> list[Switch]:

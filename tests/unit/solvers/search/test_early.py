@@ -4,12 +4,14 @@ import numpy as np
 import pytest
 
 from solvers.deadline import in_seconds
+from solvers.search.chatter import chatter
 from solvers.search.early import sharpened_early
 from solvers.search.pursuit import pursue
 from solvers.search.record import End
 from solvers.search.settling import worth_of_misses
 from solvers.search.structure import present_switches
 from tests.unit.solvers.problems import regulator, shape, stated
+from tests.unit.solvers.search.test_chatter import FULLER, VALUE
 from tests.unit.solvers.search.test_sharpen import CLOSED_FORMS
 
 
@@ -56,8 +58,8 @@ def test_a_blurred_point_at_an_end_is_no_arc_and_an_abnormal_end_is_known_less_w
     assert worth_of_misses(path) > 0.5 * found.value_error
 
 
-def test_a_structure_that_lacks_an_arc_is_refused():
-    """The first mesh shows no full thrust before the singular arc: without it the error hardly falls.
+def test_what_a_structure_lacks_is_read_off_what_it_leads_to():
+    """The first mesh shows no full thrust before the singular arc: without it the error hardly falls, but is seen.
 
     Dolan, More, Munson (2004), ANL/MCS-TM-273, problem 10; more digits by integrating the arcs, as in the catalogue.
     """
@@ -70,6 +72,15 @@ def test_a_structure_that_lacks_an_arc_is_refused():
         endpoints=["h(0) = 1", "v(0) = 0", "m(0) = 1", "m(T) = 0.6"],
     )
     found, base = sharpened(rocket)
-    assert len(base.paths) > 1
+    assert len(base.paths) == 1
     assert [(h.stretch, h.side) for h in found.problem.held] == [(0, 1), (2, -1)]
     assert found.paths[-1].value == pytest.approx(1.01283691831751, abs=1e-11)
+
+
+def test_chattering_is_continued_from_the_first_mesh():
+    """Fuller (1963): infinitely many switches; the value is the closed form of the catalogue."""
+    found, base = sharpened(stated(**FULLER))
+    assert len(base.paths) == 1
+    assert found.shown
+    assert chatter(found.paths[-1]).steady
+    assert abs(found.paths[-1].value - VALUE) <= found.value_error <= 1e-6 * VALUE
