@@ -89,13 +89,13 @@ def _description(app: FastAPI) -> dict[str, Any]:
 
 def _schemas() -> dict[str, Any]:
     """Every document that goes in or comes out; loaded only for this."""
-    from service import schemas
+    from service.schemas import reading, result, runs
     from service.spec import Document
     from service.spec.schema import problem_schema
 
     found: dict[str, Any] = {}
-    answers = (schemas.Run, schemas.RunPage, schemas.ResultDocument, schemas.Readiness, schemas.ProblemDetails)
-    for model in (Document, schemas.ReadingDocument, *answers):
+    answers = (runs.Run, runs.RunPage, result.ResultDocument, runs.Readiness, runs.ProblemDetails)
+    for model in (Document, reading.ReadingDocument, *answers):
         schema = model.model_json_schema(by_alias=True, ref_template=_REF + "{model}")
         found.update(schema.pop("$defs", {}))
         found[model.__name__] = schema

@@ -23,7 +23,7 @@ from service.results import shown_result
 from service.routes.check import reading_of
 from service.routes.needs import TheRun, TheServices
 from service.run import LONGEST_SOUGHT, CursorError, Run, State
-from service.schemas import Verdict
+from service.schemas.parts import Verdict
 from service.services import Services
 from service.sketches import sketches
 from web import display, links

@@ -20,7 +20,7 @@ from service.resource import has_result, resource
 from service.results import result_text
 from service.routes.needs import JsonBody, TheRun, TheServices, accepts
 from service.run import LONGEST_SOUGHT, CursorError, State
-from service.schemas import Verdict
+from service.schemas.parts import Verdict
 from web import links
 
 IMMUTABLE = "private, max-age=31536000, immutable"

@@ -30,7 +30,8 @@ def read_problem_schema(request: Request) -> Response:
 @router.get(links.RESULT_SCHEMA, summary="JSON Schema of the result document", response_model=None, responses=_SCHEMA)
 def read_result_schema(request: Request) -> Response:
     """Draft 2020-12."""
-    from service.schemas import ResultDocument, json_schema
+    from service.schemas.parts import json_schema
+    from service.schemas.result import ResultDocument
 
     return _schema(request, json_schema(ResultDocument, links.RESULT_SCHEMA))
 

@@ -15,15 +15,12 @@ from collections.abc import Callable, Iterable
 from dataclasses import dataclass
 from enum import Enum
 
-import numpy as np
-
+from solvers.checks.quadratic import Quadratic, add_to, bends, multiplied, nowhere_negative
 from solvers.checks.tabulated import bounds, inside
 from solvers.formula.evaluate import REAL
 from solvers.formula.nodes import SIDE, At, Call, Lookup, Name, Negative, Node, Number, Power, Product, Sum
 
 INF = math.inf
-ROUNDING = 1e-12
-"""Eigenvalues above minus this, of a form whose diagonal holds ones, count as nonnegative."""
 
 
 class Bend(Enum):
@@ -67,9 +64,6 @@ Leaf = Callable[[Name | At], Shape]
 
 Unfold = Callable[[Node], Node]
 """A node with an abbreviation replaced by what it stands for."""
-
-Variable = tuple[str, int, str]
-Quadratic = dict[tuple[Variable, ...], float]
 
 
 def shape_of(tree: Node, leaf: Leaf, unfold: Unfold) -> Shape:
@@ -133,10 +127,8 @@ def _sum(tree: Sum, leaf: Leaf, unfold: Unfold) -> Shape:
         if part is None:
             others.append(shape)
         else:
-            _add_to(quadratic, part, -1.0 if minus else 1.0)
-    matrix = _matrix({key: value for key, value in quadratic.items() if len(key) == 2}, homogeneous=False)
-    bend = _bend(_nonnegative(matrix), _nonnegative(-matrix))
-    return Shape(_added([Shape(bend), *others]).bend, total.low, total.high)
+            add_to(quadratic, part, -1.0 if minus else 1.0)
+    return Shape(_added([Shape(_bend(*bends(quadratic))), *others]).bend, total.low, total.high)
 
 
 def _times(a: Shape, b: Shape) -> Shape:
@@ -166,8 +158,7 @@ def _product(tree: Product, leaf: Leaf, unfold: Unfold) -> Shape:
     if total.bend is Bend.UNKNOWN:
         quadratic = quadratic_of(tree, leaf, unfold)
         if quadratic is not None:
-            matrix = _matrix({key: value for key, value in quadratic.items() if len(key) == 2}, homogeneous=False)
-            return Shape(_bend(_nonnegative(matrix), _nonnegative(-matrix)), total.low, total.high)
+            return Shape(_bend(*bends(quadratic)), total.low, total.high)
     return total
 
 
@@ -310,7 +301,7 @@ def quadratic_of(tree: Node, leaf: Leaf, unfold: Unfold) -> Quadratic | None:
                 part = quadratic_of(term, leaf, unfold)
                 if part is None:
                     return None
-                _add_to(total, part, -1.0 if negative else 1.0)
+                add_to(total, part, -1.0 if negative else 1.0)
             return total
         case Product(factors=factors, over=over):
             result: Quadratic | None = {(): 1.0}
@@ -318,7 +309,7 @@ def quadratic_of(tree: Node, leaf: Leaf, unfold: Unfold) -> Quadratic | None:
                 part = quadratic_of(factor, leaf, unfold)
                 if part is not None and divides:
                     part = {(): 1 / part[()]} if set(part) == {()} and part[()] else None
-                result = None if part is None or result is None else _multiplied(result, part)
+                result = None if part is None or result is None else multiplied(result, part)
             return result
         case Power(base=base, exponent=exponent):
             power = quadratic_of(exponent, leaf, unfold)
@@ -326,53 +317,9 @@ def quadratic_of(tree: Node, leaf: Leaf, unfold: Unfold) -> Quadratic | None:
             if inner is None or power is None or set(power) != {()}:
                 return None
             if power[()] == 2.0:
-                return _multiplied(inner, inner)
+                return multiplied(inner, inner)
     shape = shape_of(tree, leaf, unfold) if isinstance(tree, Number | Power | Call) else UNKNOWN
     return {(): shape.low} if shape.bend is Bend.GIVEN and shape.low == shape.high else None
-
-
-def _add_to(total: Quadratic, part: Quadratic, factor: float) -> None:
-    for key, value in part.items():
-        total[key] = total.get(key, 0.0) + factor * value
-
-
-def _multiplied(a: Quadratic, b: Quadratic) -> Quadratic | None:
-    result: Quadratic = {}
-    for left, x in a.items():
-        for right, y in b.items():
-            if len(left) + len(right) > 2:
-                return None
-            _add_to(result, {tuple(sorted(left + right)): x * y}, 1.0)
-    return result
-
-
-def _matrix(quadratic: Quadratic, *, homogeneous: bool) -> np.ndarray:
-    """The symmetric matrix of a quadratic; with `homogeneous` the lower degrees fill one more row and column."""
-    variables = sorted({name for key in quadratic for name in key})
-    index = {name: i for i, name in enumerate(variables)}
-    last = len(variables)
-    matrix = np.zeros((last + 1, last + 1))
-    for key, value in quadratic.items():
-        i, j = ([index[name] for name in key] + [last, last])[:2]
-        matrix[i, j] += value / 2
-        matrix[j, i] += value / 2
-    return matrix if homogeneous else matrix[:last, :last]
-
-
-def _nonnegative(matrix: np.ndarray) -> bool:
-    """True where the quadratic form is nowhere negative.  With every variable in its own unit no entry can hide behind
-    a large one of another: a form that is not negative has no entry larger than those of the diagonal then."""
-    diagonal = np.diag(matrix)
-    if np.any(diagonal < 0):
-        return False
-    zero = diagonal == 0
-    if np.any(matrix[zero]):
-        return False
-    units = np.sqrt(diagonal[~zero])
-    if not units.size:
-        return True
-    scaled = matrix[np.ix_(~zero, ~zero)] / units[:, None] / units
-    return bool(np.isfinite(scaled).all() and np.linalg.eigvalsh(scaled)[0] >= -ROUNDING)
 
 
 def _norm(tree: Node, leaf: Leaf, unfold: Unfold) -> bool:
@@ -390,7 +337,7 @@ def _norm(tree: Node, leaf: Leaf, unfold: Unfold) -> bool:
         return len(others) == 1 and _norm(others[0], leaf, unfold)
     quadratic = quadratic_of(tree, leaf, unfold)
     if quadratic is not None and any(quadratic):
-        return _nonnegative(_matrix(quadratic, homogeneous=True))
+        return nowhere_negative(quadratic)
     if isinstance(tree, Sum) and not any(tree.minus):
         return all(_square(term, leaf, unfold) for term in tree.terms)
     return _square(tree, leaf, unfold)

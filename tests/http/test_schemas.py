@@ -5,7 +5,8 @@ import json
 import pytest
 from jsonschema import Draft202012Validator
 
-from service import samples, schemas
+from service import samples
+from service.schemas import reading, runs
 from tests.http.serving import LINE
 
 
@@ -40,12 +41,12 @@ def test_results_are_results(client, line, post):
 @pytest.mark.parametrize(
     ("model", "ask"),
     [
-        (schemas.Run, lambda client, line, post: client.get(line["links"]["self"])),
-        (schemas.RunPage, lambda client, line, post: client.get("/api/v1/runs?limit=1")),
-        (schemas.ReadingDocument, lambda client, line, post: post(LINE, "/api/v1/check?necessary=true")),
-        (schemas.ProblemDetails, lambda client, line, post: post({})),
-        (schemas.ProblemDetails, lambda client, line, post: client.get("/api/v1/runs?limit=0")),
-        (schemas.Readiness, lambda client, line, post: client.get("/readyz")),
+        (runs.Run, lambda client, line, post: client.get(line["links"]["self"])),
+        (runs.RunPage, lambda client, line, post: client.get("/api/v1/runs?limit=1")),
+        (reading.ReadingDocument, lambda client, line, post: post(LINE, "/api/v1/check?necessary=true")),
+        (runs.ProblemDetails, lambda client, line, post: post({})),
+        (runs.ProblemDetails, lambda client, line, post: client.get("/api/v1/runs?limit=0")),
+        (runs.Readiness, lambda client, line, post: client.get("/readyz")),
     ],
 )
 def test_answers_have_the_shape_that_is_described(client, line, post, model, ask):

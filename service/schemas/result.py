@@ -1,52 +1,14 @@
-"""The shapes of all answers, as models: the reference page, OpenAPI and the JSON Schemas are made from them.
-
-Answers are not built through these models (a result may hold a million numbers); tests hold the answers to them.
-"""
+"""What a run leaves behind."""
 
 from __future__ import annotations
 
 from typing import Any, Literal
 
-from pydantic import BaseModel, ConfigDict, Field
-from pydantic.json_schema import GenerateJsonSchema
+from pydantic import Field
 
-DIALECT = "https://json-schema.org/draft/2020-12/schema"
-
-RunState = Literal["waiting", "solving", "finished", "failed", "stopped"]
-Verdict = Literal[
-    "global minimum",
-    "local minimum",
-    "global maximum",
-    "local maximum",
-    "stationary",
-    "not a minimum",
-    "not a maximum",
-    "not verified",
-    "best found",
-    "infeasible",
-    "no optimum",
-]
-Pieces = list[list[float | None]]
-
-
-class Part(BaseModel):
-    """A part of an answer; further members may come with later versions."""
-
-    model_config = ConfigDict(extra="allow")
-
-
-class Where(Part):
-    """A place on the independent variable and what it concerns."""
-
-    place: float | None = Field(description="in the unit of the independent variable")
-    subject: str = Field(description="the unknown or condition concerned; empty where there is none")
-
-
-class Amount(Part):
-    """A number with its unit."""
-
-    value: float | None
-    unit: str
+from service.schemas.fits import FitDocument
+from service.schemas.parts import Amount, Part, Pieces, RunState, Verdict, Where
+from service.schemas.reading import ReadingDocument
 
 
 class CheckResult(Part):
@@ -257,119 +219,6 @@ class Provenance(Part):
     meshes: list[MeshOfHistory]
 
 
-class IndependentRead(Part):
-    """The independent variable and its ends, as formulas."""
-
-    name: str
-    unit: str
-    start: str = Field(alias="from")
-    end: str = Field(alias="to")
-
-
-class UnknownRead(Part):
-    """What became of an unknown function."""
-
-    name: str
-    order: int = Field(description="highest derivative anywhere")
-    unit: str
-    role: Literal["state", "control"]
-    free: bool = Field(description="nothing gives its highest derivative: it is chosen")
-    sentence: str
-
-
-class ConstantRead(Part):
-    """A constant in its own unit."""
-
-    name: str
-    value: float
-    unit: str
-    tolerance: float | None
-
-
-class ArcRead(Part):
-    """An arc, and what happens where the next one begins."""
-
-    name: str
-    start: str = Field(alias="from")
-    end: str = Field(alias="to")
-    sentence: str
-
-
-class ParameterRead(Part):
-    """An unknown number."""
-
-    name: str
-    unit: str
-
-
-class FunctionalRead(Part):
-    """What is sought."""
-
-    sentence: str
-    mathml: str
-    unit: str
-
-
-class RelationRead(Part):
-    """One relation as mathematics."""
-
-    pointer: str
-    kind: Literal["pointwise", "integral", "endpoint", "dynamics", "abbreviation", "parameter"]
-    mathml: str
-    unit: str
-
-
-class NecessaryCondition(Part):
-    """One condition that the optimum satisfies."""
-
-    kind: Literal[
-        "Lagrangian",
-        "Hamiltonian",
-        "Euler-Lagrange",
-        "costate",
-        "stationarity",
-        "natural boundary",
-        "corner",
-        "first integral",
-    ]
-    subject: str = Field(alias="for")
-    mathml: str
-    text: str
-
-
-class Freedom(Part):
-    """How much there is to choose, and how much is fixed."""
-
-    unknown_functions: int
-    conditions: int
-    sentence: str
-
-
-class TableRead(Part):
-    """A measured function."""
-
-    name: str
-    of: list[ParameterRead] = Field(description="its arguments")
-    unit: str
-    sentence: str = Field(description="how many points there are, and what holds between and beyond them")
-
-
-class ReadingDocument(Part):
-    """How the problem was understood."""
-
-    independent: IndependentRead
-    unknowns: list[UnknownRead]
-    parameters: list[ParameterRead]
-    constants: list[ConstantRead]
-    tables: list[TableRead]
-    arcs: list[ArcRead] = Field(description="empty where one set of laws holds from end to end")
-    functional: FunctionalRead
-    relations: list[RelationRead]
-    necessary: list[NecessaryCondition] | None = Field(default=None, description="only where it was asked for")
-    freedom: Freedom
-    notes: list[str]
-
-
 class ExtremalFound(Part):
     """One of the distinct curves that several starts led to."""
 
@@ -380,44 +229,6 @@ class ExtremalFound(Part):
     starts: list[str] = Field(description="the starts that led there")
     checks: list[CheckResult]
     curve: CurveDocument | None
-
-
-class FittedParameter(Part):
-    """A parameter found from observations, with its standard deviation."""
-
-    value: float | None
-    sigma: float | None = Field(description="one standard deviation; null where the data leave something open")
-    unit: str
-
-
-class FittedObservations(Part):
-    """One list of observations and what was fitted to it; all lists have one entry for each point."""
-
-    of: str
-    arc: str = Field("", description="the arc that all of it is of, where the document names one")
-    pointer: str
-    unit: str
-    place: list[float | None]
-    observed: list[float | None]
-    fitted: list[float | None]
-    residual: list[float | None] = Field(description="observed less fitted")
-    sigma: list[float | None] | None = Field(description="as given; null where none were")
-    normalised: list[float | None] | None = Field(description="residual over sigma, or over the spread")
-    fitted_sigma: list[float | None] | None = Field(description="one standard deviation of the fitted value")
-
-
-class FitDocument(Part):
-    """A fit by least squares."""
-
-    points: int
-    sigmas_known: bool = Field(description="whether the observations gave their standard deviations")
-    sum_of_squares: float | None = Field(description="of the residuals, over sigma where that is known")
-    degrees_of_freedom: float | None = Field(description="points less the numbers that were determined from them")
-    spread: float | None = Field(description="root of sum of squares over degrees of freedom")
-    unit: str = Field(description="of the spread; the sum of squares has its square")
-    parameters: dict[str, FittedParameter]
-    covariance: list[list[float | None]] | None = Field(description="of the parameters, in their order and units")
-    lists: list[FittedObservations]
 
 
 class ResultDocument(Part):
@@ -452,81 +263,3 @@ class ResultDocument(Part):
     notes: list[str]
     reading: ReadingDocument
     provenance: Provenance
-
-
-class Links(Part):
-    """Addresses that belong to a run, relative to this server."""
-
-    self: str
-    page: str
-    problem: str
-    events: str
-    result: str | None = None
-    table: str | None = None
-    cancel: str | None = None
-
-
-class Run(Part):
-    """One problem being solved, or solved."""
-
-    id: str
-    state: RunState
-    title: str
-    problem_hash: str
-    created: str = Field(description="RFC 3339")
-    finished: str | None
-    seconds: float | None = Field(description="of work in the worker")
-    verdict: Verdict | None
-    value: float | None
-    value_error: float | None
-    value_unit: str | None
-    failure: str | None = Field(description="why the run failed, where it did")
-    links: Links
-
-
-class RunPage(Part):
-    """Runs, newest first; `next` is the address of the older ones."""
-
-    runs: list[Run]
-    next: str | None
-
-
-class Complaint(Part):
-    """One thing that is wrong, where, and what would be right."""
-
-    pointer: str | None = Field(default=None, description="JSON pointer (RFC 6901) into the body that was sent")
-    span: list[int] | None = Field(
-        default=None, description="first character of the formula, and the one after the last"
-    )
-    code: str
-    message: str
-    hint: str | None = None
-
-
-class ProblemDetails(Part):
-    """RFC 9457."""
-
-    type: str
-    title: str
-    status: int
-    detail: str
-    stage: str | None = None
-    complaints: list[Complaint] | None = None
-
-
-class Readiness(Part):
-    """Whether runs can be accepted and solved."""
-
-    ready: bool
-    database: bool = Field(description="can be written")
-    workers: int = Field(description="how many are up")
-
-
-class _Dialect(GenerateJsonSchema):
-    schema_dialect = DIALECT
-
-
-def json_schema(model: type[BaseModel], address: str) -> dict[str, Any]:
-    """The model as a JSON Schema document of its own (2020-12)."""
-    schema = model.model_json_schema(schema_generator=_Dialect)
-    return {"$schema": DIALECT, "$id": address, **schema}
