@@ -9,7 +9,7 @@ import numpy as np
 from solvers.deadline import Deadline
 from solvers.problem import Problem
 from solvers.search.accumulation import accumulation
-from solvers.search.holding import surely_held_rightly
+from solvers.search.holding import released, surely_held_rightly, wrongly_held
 from solvers.search.pursuit import go_on, pursue
 from solvers.search.record import End, Pursuit
 from solvers.search.refinement import smooth_all_along
@@ -66,7 +66,7 @@ def _with_it(
     """The problem with the switches of a structure, or of what that shows itself; None where that is in doubt.
 
     Where nothing speaks against a structure but that the error hardly falls, it lacks a switch, or all that follow
-    where a control chatters.
+    where a control chatters.  Where a control is held wrongly, it is let go.
     """
     path = base.paths[-1]
     for _ in range(READINGS):
@@ -77,14 +77,18 @@ def _with_it(
         sharp = _pursued(changed, path, base, watch, room)
         if _surely(sharp, base):
             return sharp
-        if not sharp.solved or not slow(sharp) or not _hopeful(sharp, base):
+        if not sharp.solved or at_the_edge(sharp.paths[-1]) or not agrees(sharp, base):
             break
-        if chatters(sharp):
+        path = sharp.paths[-1]
+        wrong = wrongly_held(path)
+        lacking = slow(sharp) and _hopeful(sharp, base)
+        if not lacking and not (wrong and all((held.name, held.order) in linear for held in wrong)):
+            break
+        if lacking and chatters(sharp):
             more = with_more_switches(base, sharp, watch, room)
             if more.shown and not worse(more, base):
                 return more
-        path = sharp.paths[-1]
-        changed = with_switches(base.problem, shown_by(path, linear), path, linear)
+        changed = with_switches(base.problem, shown_by(path, linear), path, linear, released(path, wrong))
     return None
 
 

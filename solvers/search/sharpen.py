@@ -141,9 +141,11 @@ def with_structure(
         if round_ == 0 and any(_begins_alike(changed, other, path) for other in tried or ()):
             break
         again, one = same, None
-        now = pursue(changed, watch, deadline, meshes=2, start=path, mesh=mesh_between(changed, path))
+        now = pursue(changed, watch, deadline, meshes=1, start=path, mesh=mesh_between(changed, path))
         if not now.solved:
             break
+        if at_the_edge(now.paths[-1]) or not agrees(now, base) or not wrongly_held(now.paths[-1]):
+            go_on(now, watch, deadline, 1)
         if tried is not None and round_ == 0:
             tried.append(changed)
         path = now.paths[-1]
