@@ -55,7 +55,8 @@ _ALONE: dict[str, tuple[float, Dimension]] = {
     "in": (0.0254, _dimension(m=1)), "ft": (0.3048, _dimension(m=1)), "rpm": (math.pi / 30, _dimension(s=-1)),
     "lb": (0.45359237, _dimension(kg=1)), "atm": (101325.0, _dimension(kg=1, m=-1, s=-2)),
     "Wh": (3600.0, _dimension(kg=1, m=2, s=-2)), "kWh": (3.6e6, _dimension(kg=1, m=2, s=-2)),
-    "t": (1e3, _dimension(kg=1)), "ha": (1e4, _dimension(m=2)), "Ohm": (1.0, _WITH_PREFIX["Ω"][1]),
+    "t": (1e3, _dimension(kg=1)), "ha": (1e4, _dimension(m=2)), "Å": (1e-10, _dimension(m=1)),
+    "Ohm": (1.0, _WITH_PREFIX["Ω"][1]),
 }  # fmt: skip
 _PINT_BASE = {"meter": 0, "kilogram": 1, "second": 2, "ampere": 3, "kelvin": 4, "mole": 5, "candela": 6}
 
@@ -157,7 +158,7 @@ def parse_unit(text: str) -> Measure:
 @lru_cache(maxsize=1024)
 def _meaning(name: str) -> tuple[float, Dimension]:
     """Size and dimension of one name.  Raises UnitTextError."""
-    name = name.replace("Ω", "Ω")
+    name = name.replace("\N{OHM SIGN}", "Ω").replace("\N{ANGSTROM SIGN}", "Å")
     if name in _ALONE:
         return _ALONE[name]
     if name in _WITH_PREFIX:

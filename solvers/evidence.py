@@ -155,7 +155,8 @@ def with_evidence(
     altered: tuple[Change, ...] = ()
     left_out = ""
     if not brief:
-        multipliers, bought = costate_curve(path), prices(path)
+        multipliers = costate_curve(path)
+        bought = tuple(price for price in prices(path) if not price.pointer.startswith(f"/unknowns/{SLACK} "))
         shifts = () if verdict in NO_OPTIMUM_FOUND else limit_shifts(path)
         depends = slopes(path, shifts) if shifts else ()
         altered, left_out = _changes(path, depends, shifts)

@@ -14,9 +14,13 @@ Symbols = tuple[tuple[str, Exponent], ...]
 """Names of units with their exponents, in the order written: `kg*m/s^2` is kg 1, m 1, s -2."""
 
 LARGEST_EXPONENT = 12
+"""Also the largest denominator of one."""
 
-_TOKEN = re.compile(r"\s*(?:(?P<name>[^\W\d_]+|°[CFR]?|%|‰)|(?P<integer>\d+)|(?P<sign>[*/^()·⋅×−-]))")
+_TOKEN = re.compile(r"\s*(?:(?P<name>[^\W\d_]+|°[CFR]?|%|‰)|(?P<number>\d+(?:\.\d+)?)|(?P<sign>[*/^()·⋅×−-]))")
 _SAME = {"·": "*", "⋅": "*", "×": "*", "−": "-"}
+
+
+_POWERS = "write powers as in m^2, s^-1 or m^(1/2)"
 
 
 class UnitTextError(ValueError):
@@ -110,20 +114,32 @@ class _Reader:
         return symbols
 
     def power(self) -> Symbols:
-        """power = primary ['^' ['-'] integer | '^' '(' '-' integer ')']"""
+        """power = primary ['^' ['-'] number | '^' '(' ['-'] number ['/' integer] ')']"""
         symbols = self.primary()
         if self.next != "^":
             return symbols
         self.take()
         bracket = self.next == "(" and bool(self.take())
         minus = self.next == "-" and bool(self.take())
-        digits = self.take()
-        if not digits.isdigit() or (bracket and self.take() != ")"):
-            raise UnitTextError(f"an exponent in “{self.text}” is no whole number", "write powers as in m^2 or s^-1")
-        if len(digits) > 2 or int(digits) > LARGEST_EXPONENT:
-            limit = f"the exponent {digits[:9]} is too large; the limit is {LARGEST_EXPONENT}"
-            raise UnitTextError(limit, "write powers as in m^2 or s^-1")
-        return raised(symbols, -int(digits) if minus else int(digits))
+        exponent = self.number()
+        if bracket and self.next == "/":
+            self.take()
+            divisor = self.number()
+            exponent = exponent / divisor if divisor else Fraction(LARGEST_EXPONENT + 1)
+        if bracket and self.take() != ")":
+            raise UnitTextError(f"an exponent in “{self.text}” is no number", _POWERS)
+        if exponent > LARGEST_EXPONENT or exponent.denominator > LARGEST_EXPONENT:
+            limit = f"an exponent in “{self.text}” is too large or too fine; the limit of both its parts is"
+            raise UnitTextError(f"{limit} {LARGEST_EXPONENT}", _POWERS)
+        exact = int(exponent) if exponent.denominator == 1 else exponent
+        return raised(symbols, -exact if minus else exact)
+
+    def number(self) -> Fraction:
+        """number = digits ['.' digits]"""
+        token = self.take()
+        if not token[:1].isdecimal() or len(token) > 9:
+            raise UnitTextError(f"an exponent in “{self.text}” is no number", _POWERS)
+        return Fraction(token)
 
     def primary(self) -> Symbols:
         """primary = name | '1' | '(' product ')'"""
@@ -135,7 +151,7 @@ class _Reader:
             return symbols
         if token == "1":
             return ()
-        if token.isdigit():
+        if token[:1].isdecimal():
             hint = "a unit has names only, as in m/s^2 or 1/s"
             raise UnitTextError(f"the number {token} cannot stand in a unit", hint)
         if not token or token in "*/^)-":

@@ -9,17 +9,19 @@ Reference: Luenberger (1969), Optimization by Vector Space Methods, section 8.5 
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 
 import numpy as np
 from numpy.typing import NDArray
 
 from solvers.problem import KINK, Condition, Seek
 from solvers.solution import Price
-from solvers.transcription.limits import constants_of, contacts, interval_of, restated
+from solvers.transcription.limits import constants_of, contacts, interval_of, quantity_bounds, restated
 from solvers.transcription.trajectory import Trajectory
 
 Array = NDArray[np.float64]
+Variable = tuple[int, int]
+"""A state and a place, by their numbers."""
 
 TRACE = 1e-6
 """Prices of inequalities below this, relative to value over size of the body, are left out."""
@@ -31,37 +33,56 @@ def prices(path: Trajectory) -> tuple[Price, ...]:
     problem = compiled.lowered.problem
     sign = 1.0 if problem.seek is Seek.MAXIMUM else -1.0  # the price is this times the multiplier
     multipliers = path.bound_multipliers
-    found = [*_conditions(path, multipliers), *_limits(path, multipliers)]
+    own = {variable: _holding(path, variable, multipliers) for variable in _single(path)}
+    elsewhere = multipliers.copy()  # what limits that hold everywhere push there
+    elsewhere[[_index(path, variable) for variable, holding in own.items() if holding is not None]] = 0.0
+    found = [*_conditions(path, multipliers, own), *_limits(path, elsewhere)]
     order = {c.pointer: k for k, c in enumerate((*problem.endpoints, *problem.integrals, *problem.constraints))}
     found.sort(key=lambda price: order.get(price.pointer, len(order)))
     return tuple(Price(p.label, p.pointer, sign * p.price + 0.0) for p in found if p.pointer)
 
 
-def _conditions(path: Trajectory, multipliers: Array) -> Iterator[Price]:
+def _conditions(path: Trajectory, multipliers: Array, own: Mapping[Variable, Condition | None]) -> Iterator[Price]:
     """Multipliers of the conditions at places and of the integral conditions."""
     program, compiled = path.program, path.program.compiled
-    constants = constants_of(compiled)
-    where = program.layout
-    for variable in {(state, place) for state, place, _ in compiled.fixed}:
-        state, place = variable
-        index = int(where.nodes[where.at_place[place], state])
-        same = [condition for s, p, condition in compiled.fixed if (s, p) == variable]
-        multiplier = float(multipliers[index])
-        holding = _holding(same, constants, multiplier, float(path.z[index]))
-        yield from (Price(c.label, c.pointer, multiplier if c is holding else 0.0) for c in same)
+    for variable, holding in own.items():
+        multiplier = float(multipliers[_index(path, variable)])
+        for c in _on(path, variable):
+            yield Price(c.label, c.pointer, multiplier if c is holding else 0.0)
     rows, repeated = path.row_multipliers[program.rows.conditions :], {own for own, _, _ in restated(compiled)}
     told = enumerate(zip(compiled.conditions, rows, strict=True))
     yield from (Price(c.label, c.pointer, float(m)) for k, (c, m) in told if k not in repeated)
 
 
-def _holding(same: list[Condition], constants: dict[str, float], multiplier: float, value: float) -> Condition:
-    """Of several conditions on one value the one that rests on its limit."""
+def _single(path: Trajectory) -> tuple[Variable, ...]:
+    """The values of single states at single places on which there are conditions."""
+    return tuple(dict.fromkeys((state, place) for state, place, _ in path.program.compiled.fixed))
 
-    def slack(condition: Condition) -> float:
-        lower, upper = interval_of(condition, constants)
-        return abs(upper - value) if multiplier > 0 else abs(value - lower)
 
-    return min(same, key=slack)
+def _on(path: Trajectory, variable: Variable) -> list[Condition]:
+    return [c for state, place, c in path.program.compiled.fixed if (state, place) == variable]
+
+
+def _index(path: Trajectory, variable: Variable) -> int:
+    """Where such a value stands in z."""
+    where, (state, place) = path.program.layout, variable
+    return int(where.nodes[where.at_place[place], state])
+
+
+def _holding(path: Trajectory, variable: Variable, multipliers: Array) -> Condition | None:
+    """Of the conditions on one value the one that rests on its limit; None where a limit that holds everywhere does."""
+    compiled = path.program.compiled
+    index = _index(path, variable)
+    constants, value, raised = constants_of(compiled), float(path.z[index]), multipliers[index] > 0
+
+    def slack(limits: tuple[float, float]) -> float:
+        return abs(limits[1] - value) if raised else abs(value - limits[0])
+
+    slacks = {rank: slack(interval_of(c, constants)) for rank, c in enumerate(_on(path, variable))}
+    nearest = min(slacks, key=lambda rank: slacks[rank])
+    lower, upper, _, _ = quantity_bounds(compiled)
+    everywhere = slack((float(lower[variable[0]]), float(upper[variable[0]])))
+    return None if everywhere < slacks[nearest] else _on(path, variable)[nearest]
 
 
 def _limits(path: Trajectory, multipliers: Array) -> Iterator[Price]:

@@ -310,3 +310,12 @@ def test_a_power_is_solved_from_a_guess_off_its_singular_point():
     found = solved(between(1, 0, 1) | {"integrand": "(y'^2)^0.75"})
     assert found.verdict in LEAST
     assert abs(found.value - 1) <= found.value_error <= 1e-6
+
+
+def test_a_convex_problem_has_no_better_curve_nearby_wherever_its_controls_switch():
+    """Where a control leaves its limit smoothly, the place is known less well than the value is."""
+    members = over(100, unknowns={"y": {}, "u": {"within": [-1, 1]}}, dynamics=["y'' = u"],
+                   functional={"seek": "minimum", "integrand": "y^2 + y'^2 + 0.01*u^2"},
+                   endpoints=["y(0) = 10", "y'(0) = 0"])  # fmt: skip
+    solution = solve(assemble(read(json.dumps({"format": 1, "title": "test", **members}).encode())))
+    assert solution.verdict is Verdict.GLOBAL_MINIMUM

@@ -13,7 +13,8 @@ from service.units import _ALONE, _PREFIXES, _WITH_PREFIX, BASE, PURE, parse_qua
 from solvers.unit_text import UnitTextError, merged, raised, read_symbols, write_symbols
 
 REGISTRY = pint.UnitRegistry()
-NAMES = {"Ω": "ohm", "Ohm": "ohm", "°": "degree", "%": "percent", "‰": "permille", "d": "day", "t": "metric_ton"}
+NAMES = {"Ω": "ohm", "Ohm": "ohm", "°": "degree", "%": "percent", "‰": "permille", "d": "day", "t": "metric_ton",
+         "Å": "angstrom"}  # fmt: skip
 PURE_BASES = ("radian", "count")
 LONG = {"m": "meter", "kg": "kilogram", "s": "second", "A": "ampere", "K": "kelvin", "mol": "mole", "cd": "candela"}
 
@@ -56,6 +57,10 @@ def test_our_prefixes_agree_with_pint(prefix):
         ("inch", 0.0254, (1,)),  # by Pint
         ("lbf", 4.4482216152605, (1, 1, -2)),  # by Pint
         ("rpm", math.pi / 30, (0, 0, -1)),
+        ("MPa*m^(1/2)", 1e6, (Fraction(-1, 2), 1, -2)),  # fracture toughness
+        ("m^-1.5", 1.0, (Fraction(-3, 2),)),
+        ("Å", 1e-10, (1,)),
+        ("\N{ANGSTROM SIGN}", 1e-10, (1,)),
     ],
 )
 def test_units_mean_what_they_say(text, factor, dimension):
@@ -65,7 +70,26 @@ def test_units_mean_what_they_say(text, factor, dimension):
 
 
 @pytest.mark.parametrize(
-    "text", ["degC", "°C", "degF", "dB", "bit", "m s", "m^1.5", "3 m", "m/", "_", "m^99", "(" * 90]
+    "text",
+    [
+        "degC",
+        "°C",
+        "degF",
+        "dB",
+        "bit",
+        "m s",
+        "m^1.",
+        "m^(1/0)",
+        "m^(1/13)",
+        "m^0.123",
+        "m^(1",
+        "m^/2",
+        "3 m",
+        "m/",
+        "_",
+        "m^99",
+        "(" * 90,
+    ],
 )
 def test_what_is_no_unit_is_refused(text):
     with pytest.raises(UnitTextError) as error:
@@ -82,7 +106,7 @@ def test_any_text_is_a_unit_or_refused(text):
 
 
 SYMBOLS = st.lists(
-    st.tuples(st.sampled_from(["m", "s", "kg", "deg", "N"]), st.integers(-2, 2).map(Fraction)), max_size=3
+    st.tuples(st.sampled_from(["m", "s", "kg", "deg", "N"]), st.fractions(-2, 2, max_denominator=4)), max_size=3
 ).map(merged)
 
 

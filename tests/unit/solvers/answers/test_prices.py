@@ -111,3 +111,39 @@ def test_bounds_of_unknowns_and_parameters_have_prices_too():
 def test_a_limit_that_does_not_bind_has_no_price():
     wide = {**CORRIDOR, "constraints": ["x <= 0.5"]}
     assert not [p for p in prices(path_of(wide)) if p.pointer == "/constraints/0"]
+
+
+@pytest.mark.parametrize(
+    ("within", "pointer", "price"),
+    [
+        ([None, None], "/endpoints/1", 2.0),
+        ([None, 3], "/endpoints/1", 2.0),
+        ([0, 1], "/endpoints/1", 2.0),  # its other side is limited as closely: what is stated for the place counts
+    ],
+)
+def test_a_limit_at_a_place_is_no_bound_of_the_unknown(within, pointer, price):
+    """The least integral of y'^2 from y(0) = 0 to y(1) = c is c^2, its slope 2 c."""
+    line = {
+        "independent": {"name": "x", "from": 0, "to": 1},
+        "unknowns": {"y": {"within": within}},
+        "functional": {"seek": "minimum", "integrand": "y'^2"},
+        "endpoints": ["y(0) = 0", "y(1) >= 1"],
+    }
+    found = {p.pointer: p.price for p in prices(path_of(line))}
+    assert found == {"/endpoints/0": pytest.approx(-price), pointer: pytest.approx(price)}
+
+
+def test_a_bound_that_is_closer_than_a_limit_at_a_place_has_its_price():
+    """min of the integral of y'^2 - 4 y with y(0) = 0 and y <= 1/2: y = 2 x (a - x/2) up to a with a^2 = 1/2."""
+    reach = {
+        "independent": {"name": "x", "from": 0, "to": 1},
+        "unknowns": {"y": {"within": [None, 0.5]}},
+        "functional": {"seek": "minimum", "integrand": "y'^2 - 4*y"},
+        "endpoints": ["y(0) = 0", "y(1) <= 0.75"],
+    }
+    found = {p.pointer: p.price for p in prices(path_of(reach))}
+    narrow = {**reach, "unknowns": {"y": {"within": [None, 0.499]}}}
+    wide = {**reach, "unknowns": {"y": {"within": [None, 0.501]}}}
+    slope = (path_of(wide).value - path_of(narrow).value) / 2e-3
+    assert found["/unknowns/y/within"] == pytest.approx(slope, rel=1e-3)
+    assert found["/endpoints/1"] == 0.0

@@ -98,6 +98,7 @@ def test_total_variation_and_a_square_cut_the_ends_off(members):
     found = solve(fitted("16*(y - x)^2", **members))
     assert found.verdict is Verdict.GLOBAL_MINIMUM
     assert abs(found.value - 2 / 3) <= found.value_error <= 1e-7
+    assert not found.prices  # what bounds the auxiliary unknowns was not stated by anybody
     assert found.curve.evaluate("y", [0.1, 0.5, 0.9]) == pytest.approx([0.25, 0.5, 0.75], abs=1e-5)
     assert sorted(switch.place for switch in found.switches) == pytest.approx([0.25, 0.75], abs=1e-5)
     assert not any("slack" in note for note in found.notes)
