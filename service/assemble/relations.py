@@ -7,6 +7,7 @@ from collections.abc import Callable, Iterator
 from dataclasses import dataclass, replace
 from itertools import pairwise
 
+from service.assemble.branches import in_branches
 from service.assemble.dimensions import Sort, Units, leader
 from service.assemble.domain import Values, literal, value_of
 from service.assemble.formulas import Formula, Statement
@@ -111,7 +112,15 @@ def _false(left: Node, right: Node, sign: str, constants: Values) -> bool:
 def conditions(
     statement: Statement, sides: Sides, meaning: Meaning, settle: Callable[[Node], Node]
 ) -> Iterator[Condition]:
-    """The conditions of a relation.
+    """The conditions of a relation, branch by branch."""
+    for condition in _as_stated(statement, sides, meaning, settle):
+        yield from in_branches(condition)
+
+
+def _as_stated(
+    statement: Statement, sides: Sides, meaning: Meaning, settle: Callable[[Node], Node]
+) -> Iterator[Condition]:
+    """The conditions of a relation as it is written.
 
     Neighbours of which one is a given number limit the other; `lower <= body <= upper` is one condition.  Where both
     depend on the curve, their difference is compared with zero.

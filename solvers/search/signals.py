@@ -104,17 +104,15 @@ LEAP = 0.1
 
 
 def jumps_at_breaks(path: Trajectory) -> bool:
-    """Whether a control that has limits leaps at a break of the mesh that is no place.
+    """Whether a control that has limits, or a constraint on some, leaps at a break of the mesh that is no place.
 
     That is an accident, and the points do not notice it: but where between the points beside it the control wants to
     switch, and with it the costate, remains open.
     """
     where = path.program.layout
     inner = np.setdiff1d(where.first[1:-1], where.first[where.at_place])
-    controls = path.program.compiled.lowered.controls
-    limited = [controls.index(signal.quantity) for signal in signals(path) if not signal.state]
-    leaps = np.abs(path.controls[inner] - path.controls[inner - 1])[:, limited]
-    return bool((leaps > LEAP * np.abs(path.controls[:, limited]).max(axis=0, initial=1e-300)).any())
+    rows = [signal.values for signal in limited(path) if not signal.state]
+    return any((np.abs(row[inner] - row[inner - 1]) > LEAP * np.abs(row).max(initial=1e-300)).any() for row in rows)
 
 
 def _changes(path: Trajectory, signal: Signal | Contact, linear: Sequence[Quantity]) -> list[Switch]:
