@@ -17,25 +17,31 @@ class Traits:
     """What a formula depends on, abbreviations included.
 
     `moving`: the independent variable or an unknown, so that it varies along the curve; `placed`: values at places;
-    `integral`: an integral; `parameter`: a parameter.  With none of them it is a given number.
+    `integral`: an integral; `parameter`: a parameter.  With none of them it is a given number.  `unknown`: an unknown.
     """
 
     moving: bool = False
     placed: bool = False
     integral: bool = False
     parameter: bool = False
+    unknown: bool = False
 
     @property
     def fixed(self) -> bool:
         """Whether it is a given number."""
         return not (self.moving or self.placed or self.integral or self.parameter)
 
+    @property
+    def sought(self) -> bool:
+        """Whether it depends on what is sought: it is neither a given number nor given along the curve."""
+        return self.unknown or self.placed or self.integral or self.parameter
+
 
 GIVEN = Traits()
 
 _OF_KIND = {
     Kind.INDEPENDENT: Traits(moving=True),
-    Kind.UNKNOWN: Traits(moving=True),
+    Kind.UNKNOWN: Traits(moving=True, unknown=True),
     Kind.PARAMETER: Traits(parameter=True),
 }
 """The traits of names that are not those of a formula or of nothing."""
@@ -52,7 +58,7 @@ class Meaning:
 
     def of(self, *trees: Node | Relation) -> Traits:
         """The traits of trees taken together."""
-        moving = placed = integral = parameter = False
+        moving = placed = integral = parameter = unknown = False
         stack = [part for tree in trees for part in (tree.sides if isinstance(tree, Relation) else (tree,))]
         while stack:
             node = stack.pop()
@@ -65,9 +71,10 @@ class Meaning:
                     of = self.traits.get(name, GIVEN)
                     moving, placed = moving or of.moving, placed or of.placed
                     integral, parameter = integral or of.integral, parameter or of.parameter
+                    unknown = unknown or of.unknown
                 case _:
                     stack.extend(children(node))
-        return Traits(moving, placed, integral, parameter)
+        return Traits(moving, placed, integral, parameter, unknown)
 
 
 def read_meaning(formulas: Formulas, names: Names) -> Meaning:

@@ -114,7 +114,7 @@ def conditions(
 ) -> Iterator[Condition]:
     """The conditions of a relation, branch by branch."""
     for condition in _as_stated(statement, sides, meaning, settle):
-        yield from in_branches(condition)
+        yield from in_branches(condition, meaning)
 
 
 def _as_stated(

@@ -23,7 +23,8 @@ def limits(*constraints):
         ("abs(y') <= M", ["y' <= M", "-y' <= M"]),
         ("abs(y') - M <= 0", ["y' <= M", "-y' <= M"]),
         ("M >= 2*abs(y')", ["M >= 2*y'", "M >= 2*(-y')"]),
-        ("y >= max(x, 1 - x)", ["y >= x", "y >= 1 - x"]),
+        ("y >= max(y', 1 - x)", ["y >= y'", "y >= 1 - x"]),
+        ("y >= abs(x - abs(y'))", ["y >= x - abs(y')", "y >= -(x - y')", "y >= -(x - (-y'))"]),
         ("min(y, 2*y) >= 0.1", ["y >= 0.1", "2*y >= 0.1"]),
         ("abs(max(y, -y')) <= 3", ["y <= 3", "y' >= -3", "max(y, -y') >= -3"]),
     ],
@@ -34,7 +35,16 @@ def test_every_branch_is_limited(constraint, labels):
 
 @pytest.mark.parametrize(
     "constraint",
-    ["abs(y') >= 1", "abs(y) = 1", "max(y, y') >= 0", "abs(y) + abs(y') >= 1", "1/abs(y) <= 3", "x*abs(y) <= 3"],
+    [
+        "abs(y') >= 1",
+        "abs(y) = 1",
+        "max(y, y') >= 0",
+        "abs(y) + abs(y') >= 1",
+        "1/abs(y) <= 3",
+        "x*abs(y) <= 3",
+        "y >= abs(x - 1)",
+        "y >= max(0.3 - x, x - 0.4)",
+    ],
 )
 def test_what_is_no_limit_on_each_branch_stays(constraint):
     assert limits(constraint) == [(constraint, "/constraints/0")]
