@@ -123,7 +123,7 @@ def _as_stated(
     """The conditions of a relation as it is written.
 
     Neighbours of which one is a given number limit the other; `lower <= body <= upper` is one condition.  Where both
-    depend on the curve, their difference is compared with zero.
+    depend on the curve, their difference is compared with zero, so that the middle of a chain is what is limited.
     """
     fixed = [meaning.of(tree).fixed for tree in sides.trees]
     trees = [settle(tree) for tree in sides.trees]
@@ -145,8 +145,10 @@ def _as_stated(
             yield limited
             pending = None
         else:
-            difference = Sum((left, right), (False, True), statement.tree.span)
-            yield _limited(difference, ZERO, sign, False, label, place, sides.unit)
+            last = index + 1 == len(statement.tree.signs)
+            body, limit = (left, right) if last else (right, left)
+            difference = Sum((body, limit), (False, True), statement.tree.span)
+            yield _limited(difference, ZERO, sign, not last, label, place, sides.unit)
 
 
 def _limited(body: Node, limit: Node, sign: str, limit_on_left: bool, label: str, place: str, unit: Unit) -> Condition:

@@ -39,7 +39,10 @@ def prices(path: Trajectory) -> tuple[Price, ...]:
     found = [*_conditions(path, multipliers, own), *_limits(path, elsewhere)]
     order = {c.pointer: k for k, c in enumerate((*problem.endpoints, *problem.integrals, *problem.constraints))}
     found.sort(key=lambda price: order.get(price.pointer, len(order)))
-    return tuple(Price(p.label, p.pointer, sign * p.price + 0.0) for p in found if p.pointer)
+    totals: dict[tuple[str, str], float] = {}  # a relation may have become several conditions
+    for price in found:
+        totals[price.label, price.pointer] = totals.get((price.label, price.pointer), 0.0) + price.price
+    return tuple(Price(*told, sign * total + 0.0) for told, total in totals.items() if told[1])
 
 
 def _conditions(path: Trajectory, multipliers: Array, own: Mapping[Variable, Condition | None]) -> Iterator[Price]:
@@ -96,6 +99,7 @@ def _limits(path: Trajectory, multipliers: Array) -> Iterator[Price]:
         pushed = np.zeros((1, point.constraints))
         pushed[0, rank] = path.row_multipliers[program.rows.conditions + again]
         rows, touched = np.vstack([rows, pushed]), np.vstack([touched, np.zeros(pushed.shape, np.int8)])
+    pushed_on: dict[tuple[str, str], list[tuple[float, float, float]]] = {}  # by relation: upper, lower, least
     for k, condition in enumerate(compiled.pointwise[lines:], start=lines):
         if condition.equality:
             yield Price(condition.label, condition.pointer, float(rows[:, k].sum()))
@@ -103,7 +107,10 @@ def _limits(path: Trajectory, multipliers: Array) -> Iterator[Price]:
             least, sides = worth / program.row_scale[program.rows.pointwise + k], touched[:, k]
             upper = float(np.where(sides > 0, rows[:, k], np.maximum(rows[:, k], 0.0))[sides >= 0].sum())
             lower = float(np.where(sides < 0, rows[:, k], np.minimum(rows[:, k], 0.0))[sides <= 0].sum())
-            yield from _told((condition.label,) * 2, (condition.pointer,) * 2, upper, lower, least)
+            pushed_on.setdefault((condition.label, condition.pointer), []).append((upper, lower, least))
+    for (label, pointer), pushes in pushed_on.items():
+        upper, lower = sum(push[0] for push in pushes), sum(push[1] for push in pushes)
+        yield from _told((label,) * 2, (pointer,) * 2, upper, lower, max(push[2] for push in pushes))
     held = _held(path)
     free = np.where(program.lower == program.upper, 0.0, multipliers)
     above = np.where(held > 0, multipliers, np.maximum(free, 0.0))

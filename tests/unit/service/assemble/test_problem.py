@@ -75,9 +75,9 @@ def test_a_line_below_the_highest_order_holds_as_an_equality():
         ("x >= u", [("x - u", "0", None)]),
         ("x = u", [("x - u", "0", "0")]),
         ("x = c", [("x", "c", "c")]),
-        ("x <= u <= 3", [("x - u", None, "0"), ("u", None, "3")]),
+        ("x <= u <= 3", [("u - x", "0", None), ("u", None, "3")]),  # the middle is what is limited
         ("0 <= x <= u", [("x", "0", None), ("x - u", None, "0")]),
-        ("0 <= x <= u <= 1", [("x", "0", None), ("x - u", None, "0"), ("u", None, "1")]),
+        ("0 <= x <= u <= 1", [("x", "0", None), ("u - x", "0", None), ("u", None, "1")]),
         ("x <= c*x", [("x - c*x", None, "0")]),
     ],
 )

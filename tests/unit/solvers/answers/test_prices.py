@@ -9,6 +9,8 @@ from service.spec import read
 from solvers.answers.prices import prices
 from solvers.deadline import FOREVER
 from solvers.search.pursuit import pursue
+from solvers.solution import Verdict
+from solvers.solve import solve
 
 
 def path_of(document):
@@ -147,3 +149,32 @@ def test_a_bound_that_is_closer_than_a_limit_at_a_place_has_its_price():
     slope = (path_of(wide).value - path_of(narrow).value) / 2e-3
     assert found["/unknowns/y/within"] == pytest.approx(slope, rel=1e-3)
     assert found["/endpoints/1"] == 0.0
+
+
+def test_a_limit_that_is_a_parameter_is_told_by_its_sides():
+    """The least p >= |x''| from rest to rest, x from 0 to 1 in 1, is 4; by symmetry half on each side."""
+    least = {
+        **REST,
+        "parameters": {"p": {"within": [0, 100]}},
+        "constraints": ["-p <= u <= p"],
+        "functional": {"seek": "minimum", "endpoint": "p"},
+    }
+    solution = solve(assemble(read(json.dumps({"format": 1, "title": "test", **least}).encode())))
+    assert solution.verdict is Verdict.GLOBAL_MINIMUM  # though the switch lies on a break of the first mesh
+    assert solution.value == pytest.approx(4, rel=1e-8)
+    sides = {p.label: p.price for p in solution.prices if p.pointer == "/constraints/0"}
+    assert sides == {"-p <= u <= p (upper)": pytest.approx(-0.5), "-p <= u <= p (lower)": pytest.approx(0.5)}
+
+
+def test_a_relation_that_became_two_conditions_has_one_price():
+    """The least time from rest to rest over 1 with |u| <= c is 2/sqrt(c): it falls by 1 per unit of c = 1."""
+    quick = {
+        **REST,
+        "independent": {"name": "t", "from": 0, "to": "T"},
+        "parameters": {"T": {"within": [0.1, 10]}},
+        "constraints": ["max(u, -u) <= 1"],
+        "functional": {"seek": "minimum", "endpoint": "T"},
+        "endpoints": ["x(0) = 0", "x'(0) = 0", "x(T) = 1", "x'(T) = 0"],
+    }
+    solution = solve(assemble(read(json.dumps({"format": 1, "title": "test", **quick}).encode())))
+    assert [p.price for p in solution.prices if p.pointer == "/constraints/0"] == [pytest.approx(-1)]
