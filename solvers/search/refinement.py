@@ -177,7 +177,7 @@ def _graded(path: Trajectory, k: int) -> int:
     mesh = path.program.mesh
     own = np.flatnonzero(mesh.stretch == mesh.stretch[k])
     often = int(np.clip(np.log(mesh.widths[k] * len(own)) / np.log(END_CUT), 1, MOST_CUTS))
-    if k not in own[[0, -1]] or often == 1:
+    if k not in own[[0, -1]] or often == 1 or not path.states.size:
         return 1
     nodes, breaks = (path.nodes, path.breaks) if k == own[0] else (path.nodes[::-1], path.breaks[::-1])
     end = k if k == own[0] else len(breaks) - 2 - k

@@ -6,6 +6,7 @@ full back, 1/4 of the way each time squared: 4; of the least greatest third deri
 """
 
 import json
+import math
 
 import pytest
 
@@ -64,3 +65,15 @@ def test_the_least_time_with_a_limit_on_an_absolute_value():
     assert found.value == pytest.approx(2.0, abs=1e-8)
     assert found.verdict is Verdict.LOCAL_MINIMUM
     assert not found.notes[0].startswith("abs")
+
+
+def test_the_line_nearest_to_the_exponential_in_the_greatest_error():
+    """The error is as large at both ends as between them, where exp has the slope of the chord (Chebyshev, 1859; from
+    memory): a problem without any state."""
+    found = least(["abs(e) <= M"], [], unknowns={"e": {}}, dynamics=["e = exp(t) - a - b*t"],
+                  parameters={"M": {"within": [0, 10]}, "a": {}, "b": {}})  # fmt: skip
+    chord = math.e - 1
+    exact = (1 - chord + chord * math.log(chord)) / 2
+    assert abs(found.value - exact) <= found.value_error < 1e-6
+    assert found.parameters["b"] == pytest.approx(chord, abs=1e-6)
+    assert found.verdict is Verdict.GLOBAL_MINIMUM
