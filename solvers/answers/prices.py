@@ -39,10 +39,7 @@ def prices(path: Trajectory) -> tuple[Price, ...]:
     found = [*_conditions(path, multipliers, own), *_limits(path, elsewhere)]
     order = {c.pointer: k for k, c in enumerate((*problem.endpoints, *problem.integrals, *problem.constraints))}
     found.sort(key=lambda price: order.get(price.pointer, len(order)))
-    totals: dict[tuple[str, str], float] = {}  # a relation may have become several conditions
-    for price in found:
-        totals[price.label, price.pointer] = totals.get((price.label, price.pointer), 0.0) + price.price
-    return tuple(Price(*told, sign * total + 0.0) for told, total in totals.items() if told[1])
+    return tuple(Price(p.label, p.pointer, sign * p.price + 0.0) for p in found if p.pointer)
 
 
 def _conditions(path: Trajectory, multipliers: Array, own: Mapping[Variable, Condition | None]) -> Iterator[Price]:
@@ -99,7 +96,7 @@ def _limits(path: Trajectory, multipliers: Array) -> Iterator[Price]:
         pushed = np.zeros((1, point.constraints))
         pushed[0, rank] = path.row_multipliers[program.rows.conditions + again]
         rows, touched = np.vstack([rows, pushed]), np.vstack([touched, np.zeros(pushed.shape, np.int8)])
-    pushed_on: dict[tuple[str, str], list[tuple[float, float, float]]] = {}  # by relation: upper, lower, least
+    pushed_on: dict[tuple[str, str], list[tuple[float, float, float]]] = {}  # a relation may be several conditions
     for k, condition in enumerate(compiled.pointwise[lines:], start=lines):
         if condition.equality:
             yield Price(condition.label, condition.pointer, float(rows[:, k].sum()))

@@ -164,17 +164,3 @@ def test_a_limit_that_is_a_parameter_is_told_by_its_sides():
     assert solution.value == pytest.approx(4, rel=1e-8)
     sides = {p.label: p.price for p in solution.prices if p.pointer == "/constraints/0"}
     assert sides == {"-p <= u <= p (upper)": pytest.approx(-0.5), "-p <= u <= p (lower)": pytest.approx(0.5)}
-
-
-def test_a_relation_that_became_two_conditions_has_one_price():
-    """The least time from rest to rest over 1 with |u| <= c is 2/sqrt(c): it falls by 1 per unit of c = 1."""
-    quick = {
-        **REST,
-        "independent": {"name": "t", "from": 0, "to": "T"},
-        "parameters": {"T": {"within": [0.1, 10]}},
-        "constraints": ["max(u, -u) <= 1"],
-        "functional": {"seek": "minimum", "endpoint": "T"},
-        "endpoints": ["x(0) = 0", "x'(0) = 0", "x(T) = 1", "x'(T) = 0"],
-    }
-    solution = solve(assemble(read(json.dumps({"format": 1, "title": "test", **quick}).encode())))
-    assert [p.price for p in solution.prices if p.pointer == "/constraints/0"] == [pytest.approx(-1)]
