@@ -40,5 +40,5 @@ def _without(problem: Problem, gap: int, gone: set[str], untouched: str = "") ->
         parameters=tuple(p for p in problem.parameters if p.name not in gone),
         held=tuple(held),
         calm=tuple(replace(c, stretch=moved(c.stretch)) for c in problem.calm if c.stretch != gap),
-        touches=tuple(touch for touch in problem.touches if touch.place != untouched),
+        touches=tuple(touch for touch in problem.touches if touch.place not in {untouched, *gone}),
     )

@@ -41,6 +41,8 @@ ROUNDS = 3
 """How often the structure is read again off a sharpened path ..."""
 PARTINGS = 3
 """... and how often besides touches are parted from the switches beside them."""
+FURTHER = 4
+"""Meshes that a structure is given with which the error falls."""
 SLOW = 0.25
 """How much of the error one more mesh must leave at the most where the structure is right."""
 MOST_CHATTER = 5
@@ -166,11 +168,14 @@ def with_structure(
             partings += 1
             one = with_switches(base.problem, apart, path, linear, loose)
             continue
+        if now.end is not End.CONVERGED and not slow(now):
+            go_on(now, watch, deadline, FURTHER)
+            path = now.paths[-1]
         if not jumps_at_breaks(path) and (now.end is End.CONVERGED or not slow(now)):
             break
-    if pursuit is None or pursuit.end is End.CONVERGED or chatters(pursuit):
+    if pursuit is None or pursuit.end is End.CONVERGED or len(pursuit.steps) > 2 or chatters(pursuit):
         return pursuit
-    return go_on(pursuit, watch, deadline, 4)
+    return go_on(pursuit, watch, deadline, FURTHER)
 
 
 def chatters(pursuit: Pursuit) -> bool:

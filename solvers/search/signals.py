@@ -26,6 +26,10 @@ TOUCH = 0.02
 """How short, relative to the whole, a stay of a state on its limit counts as a touch."""
 FAINT = 1e-2
 """Values of a quantity that moves less than this, relative to its size, are all alike."""
+CLOSE = 3e-3
+"""How near to a switch, relative to the whole, a touch counts as the same where both are read off a mesh ..."""
+CLOSEST = 3e-4
+"""... and how near to a place of the problem, which is known better."""
 STATE_ON_LIMIT = 1e-4
 """How near to a limit a state counts as on it: it may come close without resting there."""
 
@@ -123,7 +127,7 @@ def _changes(path: Trajectory, signal: Signal | Contact, linear: Sequence[Quanti
     """
     bent = not signal.state and signal.quantity not in linear
     lowered = path.program.compiled.lowered
-    smooth = signal.quantity in lowered.states and lowered.slope_of(signal.quantity) is not None
+    slope = lowered.slope_of(signal.quantity) if signal.quantity in lowered.states else None
     labels, points, where = signal.labels, path.points, path.program.layout
     span = float(np.ptp(path.places))
     owner = np.repeat(np.arange(len(where.first) - 1), np.diff(where.first))
@@ -136,10 +140,10 @@ def _changes(path: Trajectory, signal: Signal | Contact, linear: Sequence[Quanti
             continue
         brief = last - first < 2 or points[last] - points[first] < TOUCH * span
         if signal.state and labels[first] != 0 and brief:
-            if inner and smooth:
-                middle = float(points[first] + points[last]) / 2
+            if inner and slope is not None:
+                place = _turning(path, lowered.states.index(slope), first, last)
                 touching = (signal.quantity, int(labels[first]))
-                found.append(Switch(middle, float(points[first - 1]), float(points[last + 1]), touching))
+                found.append(Switch(place, float(points[first - 1]), float(points[last + 1]), touching))
             continue
         kept.append((first, last))
     for before, after in pairwise(kept):
@@ -157,6 +161,17 @@ def _changes(path: Trajectory, signal: Signal | Contact, linear: Sequence[Quanti
             place = _clean_jump(path, signal, slice(where.first[start], where.first[end + 1]), low, high, labels[left])
         found.append(Switch(place, low, high, bent=signal.quantity if bent else None))
     return found
+
+
+def _turning(path: Trajectory, slope: int, first: int, last: int) -> float:
+    """Where a state turns back that is at its limit from one point to another; halfway where its slope, which is the
+    state of that index, does not tell."""
+    points, slopes = path.points, path.states[:, slope]
+    turns = [k for k in range(first - 1, last + 1) if slopes[k] * slopes[k + 1] < 0]
+    if len(turns) != 1:
+        return float(points[first] + points[last]) / 2
+    k = turns[0]
+    return float(points[k] + slopes[k] / (slopes[k] - slopes[k + 1]) * (points[k + 1] - points[k]))
 
 
 def _runs(labels: Indices) -> list[tuple[int, int]]:
@@ -193,7 +208,7 @@ def _merged(found: list[Switch], path: Trajectory) -> list[Switch]:
         for group in groups
     ]
     for touch in (switch for switch in found if switch.touching is not None):
-        taken = np.array([*path.places, *(switch.place for switch in merged)])
-        if np.abs(taken - touch.place).min() > 3e-3 * span:
+        read = [abs(switch.place - touch.place) > CLOSE * span for switch in merged]
+        if all(read) and np.abs(path.places - touch.place).min() > CLOSEST * span:
             merged.append(touch)
     return sorted(merged, key=lambda switch: switch.place)

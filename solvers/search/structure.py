@@ -81,7 +81,7 @@ def with_switches(
     for index, (at, place) in enumerate(spots):
         if isinstance(place, Switch):
             name = f"{SWITCH} {len(parameters) + 1}"
-            if place.touching is not None:
+            if place.touching is not None and (*place.touching[0], place.touching[1]) not in _beside(held, index):
                 touches.append(Touch(name, *place.touching[0], place.touching[1]))
             low, high = spots[index - 1][0], spots[index + 1][0]
             parameters.append(Parameter(name, at - 0.45 * (at - low), at + 0.45 * (high - at), at))
@@ -241,6 +241,11 @@ def shrinking(path: Trajectory) -> list[tuple[float, float]]:
 def on_limits(held: tuple[Held, ...], stretch: int) -> set[tuple[str, int, int]]:
     """What is held along a stretch, and on which side."""
     return {(h.name, h.order, h.side) for h in held if h.stretch == stretch}
+
+
+def _beside(held: tuple[Held, ...], place: int) -> set[tuple[str, int, int]]:
+    """What is held on either side of a place: to touch that limit there besides would be one condition too many."""
+    return on_limits(held, place - 1) | on_limits(held, place)
 
 
 def _held(path: Trajectory, places: Array, loose: Sequence[Release]) -> tuple[tuple[Held, ...], tuple[Held, ...]]:

@@ -43,19 +43,28 @@ def parted(path: Trajectory) -> list[Switch] | None:
 def _forced(path: Trajectory, touch: Touch) -> bool:
     """Whether a control switches at a touch and the slope there has to be held."""
     program = path.program
-    problem, states = program.compiled.lowered.problem, program.compiled.lowered.states
+    problem = program.compiled.lowered.problem
     rank = [place.label for place in problem.places].index(touch.place)
     if on_limits(problem.held, rank - 1) == on_limits(problem.held, rank):
         return False
-    slope = program.layout.nodes[program.layout.at_place[rank], states.index((touch.name, touch.order + 1))]
+    slope = program.layout.nodes[program.layout.at_place[rank], _slope(path, touch)]
     price = path.bound_multipliers[slope] * program.scale[slope] / abs(program.value_scale)
     return bool(abs(price) > PRICE)
 
 
 def _flatter_side(path: Trajectory, touch: Touch) -> int:
     """On which side of a touch the state bends less: there it stays near its limit for longer."""
-    problem, states = path.program.compiled.lowered.problem, path.program.compiled.lowered.states
+    problem = path.program.compiled.lowered.problem
     node = path.program.layout.at_place[[place.label for place in problem.places].index(touch.place)]
-    slopes = np.abs(path.nodes[:, states.index((touch.name, touch.order + 1))])
+    slopes = np.abs(path.nodes[:, _slope(path, touch)])
     before, after = (slopes[node + way] / abs(path.breaks[node + way] - path.breaks[node]) for way in (-1, 1))
     return 1 if after < before else -1
+
+
+def _slope(path: Trajectory, touch: Touch) -> int:
+    """Which state is the slope of the one that touches its limit."""
+    lowered = path.program.compiled.lowered
+    slope = lowered.slope_of((touch.name, touch.order))
+    if slope is None:
+        raise ValueError("only a state whose slope is a state can touch a limit")
+    return lowered.states.index(slope)

@@ -45,6 +45,14 @@ def test_an_arc_and_a_touch_beside_it_become_one(held, touch, places, stretches)
     assert whole.touches == ()
 
 
+def test_a_gap_goes_with_what_was_touched_at_its_ends():
+    """Another state touches its limit where the gap begins; that place is no more."""
+    apart = cut((Held(1, "x", 0, 1), Held(3, "x", 0, 1)))
+    assert joined(replace(apart, touches=(Touch("switch 2", "y", 0, 1),))).touches == ()
+    kept = Touch("switch 4", "y", 0, 1)
+    assert joined(replace(apart, touches=(kept,))).touches == (kept,)
+
+
 def test_an_arc_and_a_touch_of_the_other_limit_stay_two():
     assert joined(replace(cut((Held(1, "x", 0, 1),)), touches=(Touch("switch 3", "x", 0, -1),))) is None
 

@@ -171,6 +171,61 @@ def test_a_state_that_is_near_its_limit_for_a_while_is_not_implied():
     assert changed.implied == ()
 
 
+CART = {"unknowns": {"x": {"within": [-1, 1]}, "u": {"within": [-9, 9]}}, "dynamics": ["x'' = u"],
+        "endpoints": ["x(0) = 0"]}  # fmt: skip
+"""A place whose second derivative is a control."""
+
+
+def cart_along(mesh, x, v, u, members=CART):
+    """A cart with given courses, whether they belong together or not."""
+    program = program_of(stated(**members), mesh)
+    where = program.layout
+    z = np.zeros(where.size)
+    z[where.places] = np.linspace(0, 1, len(where.places))
+    breaks, points = mesh.breaks(z[where.places]), (where.stretch + where.fractions) / (len(where.places) - 1)
+    for index, course in enumerate((x, v)):
+        z[where.nodes[:, index]], z[where.inner[:, index]] = course(breaks), course(points)
+    z[where.controls[:, 0]] = u(points)
+    still = Minimum(Outcome.SOLVED, z / program.scale, 0, np.zeros(where.size), np.zeros(program.rows.count), 0, 0, 0,
+                    "")  # fmt: skip
+    return trajectory(program, still)
+
+
+def test_a_touch_lies_where_the_state_turns_back():
+    """The parabola below 1 counts as on its limit up to 0.01 from its top at 0.507; the points reach from 0.50."""
+    path = cart_along(
+        uniform(1, 25, 4), lambda t: 1 - 2 * (t - 0.507) ** 2, lambda t: -4 * (t - 0.507), lambda t: -4 + 0 * t
+    )
+    (touch,) = switches(path, LINEAR)
+    assert touch.touching == (("x", 0), 1)
+    assert touch.place == pytest.approx(0.507, abs=1e-12)
+
+
+@pytest.mark.parametrize("apart, found", [(1.5e-3, 1), (1e-4, 0)])
+def test_a_touch_is_told_apart_from_a_place_that_is_known(apart, found):
+    """Two switches as near as that are one; a place of the problem is known better."""
+    top = 0.5 + apart
+    path = cart_along(uniform(2, 12, 4), lambda t: 1 - 2 * (t - top) ** 2, lambda t: -4 * (t - top),
+                      lambda t: -4 + 0 * t, CART | {"endpoints": ["x(0) = 0", "x(0.5) >= 0"]})  # fmt: skip
+    assert len(path.places) == 3
+    assert len(switches(path, LINEAR)) == found
+
+
+def test_where_an_arc_on_a_limit_ends_that_limit_is_not_touched_besides():
+    path = cart_along(
+        TENTHS,
+        lambda t: np.minimum(1, 4 * t * (1 - t) + (t > 0.5)),
+        lambda t: np.maximum(4 - 8 * t, 0),
+        lambda t: np.where(t < 0.5, -8, 0),
+    )
+    end = Switch(0.5, 0.5, 0.5, (("x", 0), 1))
+    changed = with_switches(stated(**CART), [end], path, LINEAR)
+    assert [(h.stretch, h.name, h.side) for h in changed.held] == [(1, "x", 1)]
+    assert changed.touches == ()
+    other = Switch(0.5, 0.5, 0.5, (("x", 0), -1))
+    assert len(with_switches(stated(**CART), [other], path, LINEAR).touches) == 1
+
+
 def test_a_touch_soon_after_a_switch_is_a_place_of_its_own():
     path = path_of(lambda t: np.where(t < 0.4, -1.0, 1.0))
     touch = Switch(0.401, 0.401, 0.401, (("x", 0), -1))
