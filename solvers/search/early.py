@@ -9,7 +9,7 @@ import numpy as np
 from solvers.deadline import Deadline
 from solvers.problem import Problem
 from solvers.search.accumulation import accumulation
-from solvers.search.holding import released, surely_held_rightly, wrongly_held
+from solvers.search.holding import held_rightly, released, surely_held_rightly, wrongly_held
 from solvers.search.pursuit import go_on, pursue
 from solvers.search.record import End, Pursuit
 from solvers.search.refinement import smooth_all_along
@@ -23,12 +23,11 @@ from solvers.transcription.trajectory import Trajectory
 
 PLAIN = 3
 """Plain meshes after which more effort is due to find the switches."""
-READINGS = 2
-"""How often a structure is read after each of them: off that mesh, and off what the structure read there led to."""
 LEAST_POINTS = 4
 """So many points of the mesh must lie on every arc, or it may be none: as many as an interval of the first mesh has."""
-HASTY = 40
-"""Iterations within which a right structure is solved: most take less than 20."""
+HASTY = (30, 40)
+"""Iterations within which a right structure is solved that is read off a plain mesh (most take less than 20), and then
+one that is read off what that led to."""
 FURTHER = 2
 """Meshes that a right structure is given where the second one does not suffice."""
 NEARLY = 30.0
@@ -69,12 +68,12 @@ def _with_it(
     where a control chatters.  Where a control is held wrongly, it is let go.
     """
     path = base.paths[-1]
-    for _ in range(READINGS):
+    for iterations in HASTY:
         if changed is None or any(alike(changed, other) for other in tried):
             break
         tried.append(changed)
         room = deadline.within(SHARE * deadline.left)
-        sharp = _pursued(changed, path, base, watch, room)
+        sharp = _pursued(changed, path, base, iterations, watch, room)
         if _surely(sharp, base):
             return sharp
         if not sharp.solved or at_the_edge(sharp.paths[-1]) or not agrees(sharp, base):
@@ -135,9 +134,12 @@ def _points_between(path: Trajectory, low: float, high: float) -> int:
     return int(np.sum((path.points > low) & (path.points < high)))
 
 
-def _pursued(changed: Problem, path: Trajectory, base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit:
+def _pursued(
+    changed: Problem, path: Trajectory, base: Pursuit, iterations: int, watch: Watch | None, deadline: Deadline
+) -> Pursuit:
     """The problem with switches solved from the path that shows them, on further meshes where that is hopeful."""
-    sharp = pursue(changed, watch, deadline, meshes=1, start=path, mesh=mesh_between(changed, path), iterations=HASTY)
+    mesh = mesh_between(changed, path)
+    sharp = pursue(changed, watch, deadline, meshes=1, start=path, mesh=mesh, iterations=iterations)
     if sharp.solved and _hopeful(sharp, base):
         go_on(sharp, watch, deadline, 1)
         if sharp.end is not End.CONVERGED and not slow(sharp):
@@ -161,8 +163,10 @@ def _hopeful(sharp: Pursuit, base: Pursuit) -> bool:
     """Whether nothing speaks against a structure yet: on a coarse mesh a switch may still be far off its place."""
     path = sharp.paths[-1]
     whole = not at_the_edge(path) and accumulation(path) is None  # else touches are missing
-    return whole and agrees(sharp, base) and surely_held_rightly(path)
+    return whole and agrees(sharp, base) and held_rightly(path)
 
 
 def _right(sharp: Pursuit, base: Pursuit) -> bool:
-    return _hopeful(sharp, base) and not jumps_at_breaks(sharp.paths[-1]) and not worse(sharp, base)
+    path = sharp.paths[-1]
+    sound = surely_held_rightly(path) and not jumps_at_breaks(path)
+    return sound and _hopeful(sharp, base) and not worse(sharp, base)
