@@ -27,7 +27,7 @@ Array = NDArray[np.float64]
 Indices = NDArray[np.int64]
 
 
-SETTINGS = LEAST_SQUARES_MULTIPLIERS | {"ipopt.tol": 1e-8, "ipopt.acceptable_tol": 1e-5, "ipopt.max_iter": 300}
+SETTINGS = LEAST_SQUARES_MULTIPLIERS | {"ipopt.tol": 1e-8, "ipopt.acceptable_tol": 1e-5}
 """What conflicts is named to some digits."""
 
 
@@ -204,10 +204,12 @@ def least_violation(
     prices: Mapping[str, float] = MappingProxyType({}),
     pull: float = PULL,
     steadily: bool = False,
+    iterations: int = 300,
 ) -> LeastViolation:
     """Minimise the sum of the slacks from a start (scaled), each times the price of its pointer, or once.
 
-    `steadily` lowers the barrier step by step: slower where all goes well, but from a start that is no good it arrives.
+    In so many `iterations` at most.  `steadily` lowers the barrier step by step: slower where all goes well, but from a
+    start that is no good it arrives.
     """
     parts = groups(program)
     size = program.layout.size
@@ -243,7 +245,7 @@ def least_violation(
     )
     start = np.concatenate([z, _first_slacks(program, z, owner_of_row, owner_of_variable, len(parts))])
     minimum = minimise(elastic, Start(start), deadline=deadline, watch=watch,
-                       options=SETTINGS | (STEADY if steadily else {}))  # fmt: skip
+                       options=SETTINGS | {"ipopt.max_iter": iterations} | (STEADY if steadily else {}))  # fmt: skip
     answer, amounts = minimum.z[:size], minimum.z[size:]
     findings = _findings(program, parts, owner_of_variable, answer, amounts)
     forces: dict[str, float] = {}

@@ -32,6 +32,8 @@ VIOLATED = 1e-6
 """The least sum of relative violations that counts as one."""
 VIOLATING_STARTS = 6
 """How many starts are tried before no curve is said to satisfy all conditions."""
+FURTHER_ITERATIONS = 50
+"""Iterations of each start but the first: one that meets all conditions takes 3 to 30."""
 VIOLATING_DOUBLINGS = 5
 """How often the mesh is made finer before."""
 LENGTHS = (1.0, 2.0, 4.0, 8.0, 16.0, 1 / 2, 1 / 4)
@@ -51,7 +53,8 @@ def least_violation_of(pursuit: Pursuit, minimise_: Minimiser) -> tuple[Program,
     for varied, held in [(pursuit.problem, False)] if convex else _tries(pursuit.problem):
         z = first_guess(replace(compiled, lowered=replace(compiled.lowered, problem=varied)), mesh, where).z
         program = make_program(compiled, mesh, where, z)
-        found = program, minimise_.relax(_at_length(program, z) if held else program, z / program.scale)
+        room = {} if best is None else {"iterations": FURTHER_ITERATIONS}
+        found = program, minimise_.relax(_at_length(program, z) if held else program, z / program.scale, **room)
         solved = found[1].minimum.outcome in SOLVED
         met = solved and found[1].total <= VIOLATED
         better = best is None or best[1].minimum.outcome not in SOLVED or found[1].total < best[1].total

@@ -47,6 +47,8 @@ NIMBLE: dict[str, Any] = {
 together still push; and a start close to its end is acceptable from the first by the usual measure, which must not be
 enough, while rounding may keep a large program from the last digits.  What takes longer is not determined well: there
 such a barrier leads astray, and is not tried again."""
+WHOLE_STEPS = 20
+"""Iterations of a warm start where there are no limits: its whole steps are soon through, or lead anywhere."""
 NARROW = 0.1
 """Width of an interval, relative to an even mesh, below which a smaller barrier may help."""
 
@@ -172,7 +174,7 @@ def _next(path: Trajectory, mesh: Mesh, minimise_: Minimiser) -> tuple[Program, 
     if near is not None:
         return program, near
     pursuit, first = minimise_.pursuit, gentle_barrier(mesh)
-    usual: dict[str, Any] = {"ipopt.max_iter": FEW_ITERATIONS}
+    usual: dict[str, Any] = {"ipopt.max_iter": WHOLE_STEPS if program.unlimited else FEW_ITERATIONS}
     gentle = usual | {"ipopt.mu_init": first}
     tries = [(warm, usual), (warm, gentle), (Start(warm.z), {})]
     if program.unlimited or first > NARROW * WARM["ipopt.mu_init"]:
