@@ -38,7 +38,7 @@ class Curve:
         Places beyond the ends are continued from the outermost interval.
         """
         places = np.asarray(places, dtype=float)
-        owner = np.clip(np.searchsorted(self.breaks, places, side="left") - 1, 0, len(self.breaks) - 2)
+        owner = np.searchsorted(self.breaks[1:-1], places, side="left")
         left, right = self.breaks[owner], self.breaks[owner + 1]
         local = (2 * places - left - right) / (right - left)
         if name not in self._tables:

@@ -20,6 +20,10 @@ FINEST = 1e-11
 MOST_PIECES = 600
 CHORDS = 12
 EXACT = 1e-15
+CLOSE = 1e-3
+"""How near to a place, relative to the values around, chords come ever faster ..."""
+STAYING = 0.25
+"""... so that where two leave more than this of a miss it is rounding."""
 
 
 def regraph(
@@ -33,7 +37,7 @@ def regraph(
     span = float(x(breaks[-1:])[0] - x(breaks[:1])[0])
     places, fit, probing = _fitting()
     size = float(np.abs(functions[leading](breaks)).max()) or 1.0
-    done: list[tuple[Array, Array, dict[str, Array]]] = []
+    done: list[tuple[Array, Array, Array]] = []
     starts, ends, count = breaks[:-1], breaks[1:], 0
     while len(starts):
         left, right = x(starts), x(ends)
@@ -45,16 +49,14 @@ def regraph(
         misses = np.abs(_at(functions[leading], inside) @ fit.T @ probing.T - _at(functions[leading], probes))
         count += len(starts)
         good = (misses.max(axis=1) <= 1e-10 * size) | (width <= FINEST * span) | (count >= MOST_PIECES)
-        modes = {name: _at(function, inside[good]) @ fit.T for name, function in functions.items()}
-        done.append((left[good], right[good], modes))
+        done.append((left[good], right[good], inside[good]))
         middles = (starts[~good] + ends[~good]) / 2
         starts, ends = np.concatenate([starts[~good], middles]), np.concatenate([middles, ends[~good]])
-    order = np.argsort(np.concatenate([left for left, _, _ in done]))
-    edges = np.concatenate([right for _, right, _ in done])[order]
-    first = min(float(left.min(initial=np.inf)) for left, _, _ in done)
+    lefts, rights, inside = (np.concatenate(parts) for parts in zip(*done, strict=True))
+    order = np.argsort(lefts)
     return Curve(
-        np.concatenate([[first], edges]),
-        {name: tuple(np.concatenate([modes[name] for _, _, modes in done])[order]) for name in functions},
+        np.concatenate([lefts[order[:1]], rights[order]]),
+        {name: tuple(_at(function, inside[order]) @ fit.T) for name, function in functions.items()},
     )
 
 
@@ -84,13 +86,16 @@ def _inverse(x: Callable[[Array], Array], low: Array, high: Array, wanted: Array
     low, high, below, above = (part.ravel() for part in (
         grid[rows, cell], grid[rows, cell + 1], values[rows, columns, cell], values[rows, columns, cell + 1]
     ))  # fmt: skip
-    goal = wanted.ravel()
+    goal, size = wanted.ravel(), np.abs(values).max(initial=0.0)
     at, before = low, np.zeros(len(low))
+    misses = [np.inf, np.inf]
     for _ in range(CHORDS):
         rise = np.where(above > below, above - below, 1.0)
         at = low - (high - low) * np.clip(below / rise, -1.0, 0.0)
         here = x(at) - goal
-        if np.abs(here).max(initial=0.0) <= EXACT * np.abs(values).max(initial=0.0):
+        misses.append(float(np.abs(here).max(initial=0.0)))
+        rounding = STAYING * misses[-3] < misses[-1] <= CLOSE * size
+        if misses[-1] <= EXACT * size or rounding:
             break
         left = here < 0
         side = np.where(left, -1.0, 1.0)
