@@ -9,11 +9,12 @@ from solvers.deadline import in_seconds
 from solvers.problem import Held
 from solvers.search.contacts import contacts, well_begun
 from solvers.search.early import sharpened_early
+from solvers.search.given import solve_as_given
 from solvers.search.holding import surely_held_rightly, wrongly_held
 from solvers.search.pursuit import pursue
 from solvers.search.record import End
 from solvers.search.refinement import Estimate, refine
-from solvers.search.signals import switches
+from solvers.search.signals import jumps_at_breaks, switches
 from solvers.search.structure import determined_by, present_switches, smooth_contacts, with_switches
 from solvers.solution import Course, Verdict
 from solvers.solve import solve
@@ -183,3 +184,30 @@ def test_along_a_constraint_trouble_is_not_looked_for_beside_a_narrow_interval_t
     flat, bent_at_the_left = np.ones(7), np.array([0.0, 1, -1, 1, -1, 1, -1])
     found = Estimate(np.array([1e-9, 1e-2]), (flat, flat), (flat, bent_at_the_left))
     assert refine(path, found, 1e-6).starts == pytest.approx([0.0, 0.1, middle])
+
+
+PEAK = {
+    "unknowns": {"x": {}},
+    "parameters": {"M": {"within": [0, 100]}},
+    "dynamics": None,
+    "functional": {"endpoint": "M"},
+    "endpoints": ["x(0) = 0", "x'(0) = 0", "x(1) = 1", "x'(1) = 0"],
+    "constraints": ["-M <= x'' <= M"],
+}
+"""The least peak acceleration from rest to rest: M up to the middle, then -M, a way of M/4: the farthest that
+a motion with a limited acceleration comes in time 1 (Bryson, Ho, 1975, section 3.9; from memory)."""
+
+
+def test_a_switch_between_limits_that_are_sought_is_found_also_at_a_break_of_the_first_mesh():
+    found = solve(stated(**PEAK))
+    assert found.verdict is Verdict.GLOBAL_MINIMUM
+    assert abs(found.value - 4) <= found.value_error <= 4e-6
+    held = sorted((s.start, s.end, s.course) for s in found.stretches)
+    assert [course for *_, course in held] == [Course.UPPER, Course.LOWER]
+    assert [place for *places, _ in held for place in places] == pytest.approx([0, 0.5, 0.5, 1], abs=1e-9)
+
+
+def test_a_leap_of_a_constraint_at_a_break_is_an_accident_that_a_place_is_not():
+    path = pursue(stated(**PEAK), None, in_seconds(40), meshes=1).paths[-1]
+    assert jumps_at_breaks(path)
+    assert not jumps_at_breaks(solve_as_given(stated(**PEAK), None, in_seconds(40)).paths[-1])
