@@ -39,8 +39,13 @@ COARSE = np.zeros(15)
 COARSE[1::2] = np.concatenate([_GAUSS_WEIGHTS[:-1], _GAUSS_WEIGHTS[::-1]]) / 2
 
 
-def integrate(sampler: Sampler, accuracy: float, integrands: Callable[[Sample], Array]) -> Array:
-    """The integrals of integrands (P x k, per fraction of the stretch), to a relative accuracy where it can be had."""
+def integrate(
+    sampler: Sampler, accuracy: float, integrands: Callable[[Sample], Array], least: Array | float = 0.0
+) -> Array:
+    """The integrals of integrands (P x k, per fraction of the stretch), to a relative accuracy where it can be had.
+
+    It is relative to the integral of absolute values, or to the `least` size of each that matters.
+    """
     interval = np.arange(sampler.count)
     left, width = np.zeros(sampler.count), np.ones(sampler.count)
     total = size = np.zeros(0)
@@ -51,7 +56,7 @@ def integrate(sampler: Sampler, accuracy: float, integrands: Callable[[Sample], 
         values = values * (sampler.width[interval] * width)[:, None, None]
         fine, coarse = np.einsum("q,kqi->ki", WEIGHTS, values), np.einsum("q,kqi->ki", COARSE, values)
         if turn == 0:
-            size = np.nansum(np.abs(fine), axis=0)
+            size = np.maximum(np.nansum(np.abs(fine), axis=0), least)
             total = np.zeros_like(size)
         good = np.all(np.abs(fine - coarse) <= accuracy * size / 10 + 1e-300, axis=1)
         good |= ~np.isfinite(fine).all(axis=1)  # undefined stays undefined, however finely it is cut

@@ -233,7 +233,8 @@ class Sampler:
     def anew(self) -> tuple[Array, float]:
         """The integrals of the conditions and that of the functional (SI), taken anew."""
         first = self.point.states + self.point.constraints
-        totals = integrate(self, 0.01 * self.tolerance, lambda sample: self.outputs(sample)[:, first:])
+        least = np.append(np.zeros(len(self.path.program.layout.integrals)), self.program_value)
+        totals = integrate(self, 0.01 * self.tolerance, lambda sample: self.outputs(sample)[:, first:], least)
         return totals[:-1], float(totals[-1])
 
     @property
