@@ -17,7 +17,7 @@ from solvers.transcription.layout import Layout
 from solvers.transcription.mesh import Mesh, uniform
 from solvers.transcription.natural import at_natural_sizes
 from solvers.transcription.program import Program, transcribe
-from solvers.transcription.scaling import find_row_sizes, find_scales, sizes_along
+from solvers.transcription.scaling import FAINT, find_row_sizes, find_scales, sizes_along
 
 Array = NDArray[np.float64]
 
@@ -45,15 +45,21 @@ def kinks_of(problem: Problem) -> frozenset[int]:
 
 
 def make_program(
-    compiled: Compiled, mesh: Mesh, where: Layout, z: Array, before: Program | None = None, size: float = 0.0
+    compiled: Compiled,
+    mesh: Mesh,
+    where: Layout,
+    z: Array,
+    before: Program | None = None,
+    size: float = 0.0,
+    faint: float = FAINT,
 ) -> Program:
     """A program whose scales come from values (SI) on its mesh, and do not fall far below those of the one before.
 
-    `size` is what is known of the functional's where there is none before.
+    `size` is what is known of the functional's where there is none before; `faint` is the least size of slopes.
     """
     if before is None:
         z = at_natural_sizes(compiled, mesh, where, z)
-    scales = find_scales(compiled, where, z, None if before is None else before.scales)
+    scales = find_scales(compiled, where, z, None if before is None else before.scales, faint)
     rows = find_row_sizes(compiled, where, scales, z, size if before is None else abs(before.value_scale))
     return transcribe(compiled, mesh, where, scales, rows, sizes_along(compiled, where, scales, z))
 

@@ -36,6 +36,9 @@ LITTLE = 1e-2
 """How much less the curve is pulled to where it was, once it has come near to the least violation."""
 REACH = 3.0
 """A curve farther away, in sizes of its quantities, is not thought of where only the strong pull led to an end."""
+STEEP = 1.0
+"""A slope counts as large only where it moves the function below it by more than its size: else the pull would keep a
+curve level that may well be steep once a limit of its slope is dropped."""
 DEAR = 1e3
 """What it costs that another condition gives, while one is asked how far it alone would have to."""
 
@@ -76,7 +79,7 @@ class _Search:
 
     def __init__(self, path: Trajectory, minimise_: Minimiser, deadline: Deadline) -> None:
         compiled, mesh, where = path.program.compiled, path.program.mesh, path.program.layout
-        self._program = make_program(compiled, mesh, where, first_guess(compiled, mesh, where).z)
+        self._program = make_program(compiled, mesh, where, first_guess(compiled, mesh, where).z, faint=STEEP)
         self._z = path.z / self._program.scale
         self._minimiser = Minimiser(minimise_.pursuit, minimise_.watch, deadline)
         self.every = {group.pointer for group in groups(path.program)}

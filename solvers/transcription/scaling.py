@@ -59,11 +59,14 @@ FAINT = 1e-3
 function hardly moves, its slope is the minimiser's noise, which no mesh resolves."""
 
 
-def find_scales(compiled: Compiled, where: Layout, z: Array, before: Scales | None = None) -> Scales:
+def find_scales(
+    compiled: Compiled, where: Layout, z: Array, before: Scales | None = None, faint: float = FAINT
+) -> Scales:
     """Sizes from values (SI) on a mesh: the largest value of each quantity, else its bounds, else its neighbours.
 
     A quantity that is zero all along gets the size that its derivative or integral has over the whole range; a control
-    of which nothing is known that at which it moves a state.  `before` are the sizes on the mesh before, if any.
+    of which nothing is known that at which it moves a state.  `before` are the sizes on the mesh before, if any;
+    `faint` is the least size of a slope, relative to what it is the slope of over the whole range.
     """
     lowered = compiled.lowered
     places = z[where.places]
@@ -90,7 +93,7 @@ def find_scales(compiled: Compiled, where: Layout, z: Array, before: Scales | No
         if quantity in unknown:
             states = np.array([sizes[q] for q in lowered.states])
             sizes[quantity] = _moving(compiled, where, z, index, states) or sizes[quantity]
-    not_faint(sizes, span)
+    not_faint(sizes, span, faint)
     parameters = np.abs(z[where.parameters])
     integrals = _integral_sizes(compiled, where, z)
     for index, parameter in enumerate(lowered.problem.parameters):
@@ -113,11 +116,11 @@ def _kept(found: Array, before: Array) -> Array:
     return np.where(found < ROUNDING * before, before, np.maximum(found, SHRINKAGE * before))
 
 
-def not_faint(sizes: dict[tuple[str, int], float], span: float) -> None:
+def not_faint(sizes: dict[tuple[str, int], float], span: float, faint: float = FAINT) -> None:
     """Raise the sizes of derivatives, in place, to what still moves the function below them noticeably."""
     for name, order in sorted(sizes):
         if (name, order - 1) in sizes:
-            sizes[name, order] = max(sizes[name, order], FAINT * sizes[name, order - 1] / span)
+            sizes[name, order] = max(sizes[name, order], faint * sizes[name, order - 1] / span)
 
 
 def _moving(compiled: Compiled, where: Layout, z: Array, control: int, states: Array) -> float:
