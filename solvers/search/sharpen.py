@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from dataclasses import replace
 from itertools import pairwise
 
 import numpy as np
@@ -39,8 +40,8 @@ SOFTNESS = (1e-3, 1e-5)
 """Weights of the softened problems that are tried in turn."""
 ROUNDS = 3
 """How often the structure is read again off a sharpened path ..."""
-PARTINGS = 3
-"""... and how often besides touches are parted from the switches beside them."""
+BESIDES = 3
+"""... and how often besides touches are parted from the switches beside them, or free arcs looked at uncalmed."""
 FURTHER = 4
 """Meshes that a structure is given with which the error falls."""
 SLOW = 0.25
@@ -119,15 +120,16 @@ def with_structure(
     What turns out to be held wrongly is let go, unless an arc that the mesh may have seen as two does as one.  A switch
     that ends at the edge of the room it was given is looked at again from there, and left out if it does so again: the
     arc towards which it runs has no length.  Looked at again is also a structure with which the error hardly falls from
-    one mesh to the next, or with which a control leaps within an arc.
+    one mesh to the next, or with which a control leaps within an arc; where that shows nothing else, the same is solved
+    without calming its free arcs.
     """
     linear = [base.compiled.lowered.controls[index] for index in linear_controls(base.compiled)]
     loose: list[Release] = []
     one: Problem | None = None
     seen, pursuit, again = path.program.compiled.lowered.problem, None, False
-    partings = 0
-    for round_ in range(ROUNDS + PARTINGS):
-        if round_ - partings >= ROUNDS:
+    calmed, besides = True, 0
+    for round_ in range(ROUNDS + BESIDES):
+        if round_ - besides >= ROUNDS:
             break
         found = shown_by(path, linear)
         changed = one or with_switches(base.problem, found, path, linear, loose)
@@ -139,13 +141,21 @@ def with_structure(
             break
         same = alike(changed, seen)
         if same and (again or not at_the_edge(path)):
-            break
+            rough = _uncalmed(pursuit, watch, deadline) if calmed else None
+            if rough is None:
+                break
+            path, calmed, besides = rough, False, besides + 1
+            continue
         if round_ == 0 and any(_begins_alike(changed, other, path) for other in tried or ()):
             break
         again, one = same, None
         now = pursue(changed, watch, deadline, meshes=1, start=path, mesh=mesh_between(changed, path))
         if not now.solved:
-            break
+            rough = _uncalmed(pursuit, watch, deadline) if calmed else None
+            if rough is None:
+                break
+            path, calmed, besides = rough, False, besides + 1
+            continue
         if at_the_edge(now.paths[-1]) or not agrees(now, base) or not wrongly_held(now.paths[-1]):
             go_on(now, watch, deadline, 1)
         if tried is not None and round_ == 0:
@@ -162,10 +172,11 @@ def with_structure(
             if one is None:
                 loose += released(path, wrong)
             continue
-        pursuit = now
-        apart = parted(path) if partings < PARTINGS else None
+        if calmed or pursuit is None or now.value_error <= pursuit.value_error:
+            pursuit = now
+        apart = parted(path) if besides < BESIDES else None
         if apart is not None:
-            partings += 1
+            besides += 1
             one = with_switches(base.problem, apart, path, linear, loose)
             continue
         if now.end is not End.CONVERGED and not slow(now):
@@ -176,6 +187,16 @@ def with_structure(
     if pursuit is None or pursuit.end is End.CONVERGED or len(pursuit.steps) > 2 or chatters(pursuit):
         return pursuit
     return go_on(pursuit, watch, deadline, FURTHER)
+
+
+def _uncalmed(pursuit: Pursuit | None, watch: Watch | None, deadline: Deadline) -> Trajectory | None:
+    """The same without calming where that does not converge: what it calms may switch, and not run singular."""
+    if pursuit is None or not pursuit.problem.calm or not slow(pursuit):
+        return None
+    path = pursuit.paths[-1]
+    mesh = mesh_between(pursuit.problem, path)
+    rough = pursue(replace(pursuit.problem, calm=()), watch, deadline, meshes=FURTHER, start=path, mesh=mesh)
+    return rough.paths[-1] if rough.solved else None
 
 
 def chatters(pursuit: Pursuit) -> bool:

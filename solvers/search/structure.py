@@ -17,6 +17,7 @@ from numpy.typing import NDArray
 from solvers.formula.nodes import Name, Node, Number, Power, Product, Sum
 from solvers.problem import Calm, Held, Parameter, Place, Problem, Touch
 from solvers.search.contacts import well_begun
+from solvers.search.resting import can_rest
 from solvers.search.signals import SWITCH, Signal, Switch, limited, signals, switches
 from solvers.transcription.functions import Compiled
 from solvers.transcription.lowering import Quantity
@@ -268,6 +269,7 @@ def _held(path: Trajectory, places: Array, loose: Sequence[Release]) -> tuple[tu
             if inside.any()
             and np.mean(signal.labels[inside] == side) > 0.8
             and (isinstance(signal, Signal) or well_begun(path, signal, start, end))
+            and not (isinstance(signal, Signal) and signal.state and not can_rest(path, signal.quantity, inside))
             and not any(signal.quantity == q and low < (start + end) / 2 < high for q, low, high in loose)
         ]
         most = room if len({held.name for held in here}) > 1 else len(here)

@@ -89,7 +89,7 @@ def test_the_load_comes_to_rest_when_the_switches_are_carried_out(found):
     assert largest <= SWING * (1 + 1e-6)
 
 
-@pytest.mark.parametrize("share", [0.75, 0.8, 1.15])
+@pytest.mark.parametrize("share", [0.75, 0.8, 1.1, 1.15])
 def test_with_other_weights_too_the_load_comes_to_rest(share):
     """Where g is small the load rests on its limit under less than full acceleration, where it is large it only touches
     it: from 2/tan(12 deg) = 9.41 on."""
