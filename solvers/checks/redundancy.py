@@ -36,6 +36,8 @@ Indices = NDArray[np.int64]
 
 RESTING = 1e-6
 """How near to its limit, relative to its scale, a state has to stay all along."""
+GOOD = 1e-6
+"""Figures of the checks of first order up to which multipliers are as good as any."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -49,15 +51,23 @@ class Arc:
 
 
 def unambiguous(path: Trajectory) -> Trajectory:
-    """The path with those of its possible multipliers that come nearest to what the checks of first order ask for."""
+    """The path with those of its possible multipliers that come nearest to what the checks of first order ask for.
+
+    With its own where these leave nothing to ask for.
+    """
 
     def figure(candidate: Trajectory) -> float:
         with np.errstate(all="ignore"):
             sampler = Sampler(candidate)
             return max(stationarity.check(sampler).figure or 0.0, free_ends.check(sampler).figure or 0.0)
 
-    others = list(without_redundancy(path))
-    return min([path, *others], key=figure) if others else path
+    if not redundant_arcs(path) and not len(_calm_points(path)):
+        return path
+    best, least, others = path, figure(path), without_redundancy(path)
+    while least > GOOD and (other := next(others, None)) is not None:
+        if (reached := figure(other)) < least:
+            best, least = other, reached
+    return best
 
 
 def redundant_arcs(path: Trajectory) -> list[Arc]:
