@@ -131,6 +131,7 @@ def _shape(starts_at_zero: bool, ends_at_zero: bool) -> Array:
 def _outputs(compiled: Compiled, where: Layout, bent: Array) -> Array:
     """How large each output is along each of some curves (curves x outputs), from its limits where it has any.
 
+    The last one is the whole functional, in which a pure power of the integrand may meet another of the endpoint term.
     The integrals in the curves become their own.
     """
     point, constants = compiled.point, constants_of(compiled)
@@ -147,6 +148,8 @@ def _outputs(compiled: Compiled, where: Layout, bent: Array) -> Array:
         limits = [limit for limit in interval_of(condition, constants) if np.isfinite(limit)]
         columns += [ends[:, [k]] - limit for limit in dict.fromkeys(limits)]
     columns.append(ends[:, -1:])
+    whole = np.abs(values[:, :, -1]) @ where.measures + np.abs(ends[:, -1])  # where an integral meets an endpoint term
+    columns.append(whole[:, None])
     return np.stack([np.abs(column).mean(axis=1) for column in columns], axis=1)
 
 

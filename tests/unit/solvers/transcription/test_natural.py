@@ -71,3 +71,14 @@ def test_a_string_under_any_load_is_solved(load):
     found = solve(shape(functional={"integrand": f"y'^2 - 2*{load!r}*y"}, endpoints=LEVEL))
     assert found.verdict is Verdict.GLOBAL_MINIMUM
     assert abs(found.value + load**2 * 27 / 12) <= found.value_error <= 1e-6 * load**2
+
+
+@pytest.mark.parametrize("load", [1e-12, 1e-3, 1e9])
+def test_a_beam_under_any_load_at_its_end_is_solved(load):
+    """The integrand is one power and the endpoint term another: y = load (3 L x^2 - x^3)/6, value -load^2 L^3/6."""
+    functional = {"integrand": "y''^2/2", "endpoint": f"-{load!r}*y(3)"}
+    clamped = ["y(0) = 0", "y'(0) = 0"]
+    assert 1e-2 < sizes(functional=functional, endpoints=clamped)["y"] / (9 * load) < 1e2
+    found = solve(shape(functional=functional, endpoints=clamped))
+    assert found.verdict is Verdict.GLOBAL_MINIMUM
+    assert abs(found.value + load**2 * 27 / 6) <= found.value_error <= 1e-6 * load**2 * 27 / 6
