@@ -180,6 +180,9 @@ def with_evidence(
     kept = {name: functions for name, functions in shape.functions.items() if name.rstrip("'") in own}
     fitted = None if brief else fit(path)
     notes = () if brief else (*_notes(problem, found, pursuit), *([left_out] if left_out else []))
+    if fitted is not None and (resting := [name for name in fitted.held if name in parameters]):
+        rests, there = ("rests on its limit", "it") if len(resting) == 1 else ("rest on their limits", "them")
+        notes += (f"{', '.join(resting)} {rests}: the one-sigma errors of the fit are those with {there} held there.",)
     errors = place_errors(pursuit)
     switches = _switches(pursuit, gauged, errors) if plain else ()
     open_ones = {one.name for one in loose if one.place is None}  # nothing says what these do

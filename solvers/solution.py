@@ -218,7 +218,8 @@ class Fit:
     """A fit to observations: `squares` is the sum of the squares of the residuals, over sigma where that is known.
 
     `freedom` is the number of points less that of the numbers determined from them, `spread` the root of squares over
-    freedom; both None where the data leave something open, and so is `covariance` (of the parameters `names`).
+    freedom; both None where the data leave something open, and so is `covariance` (of the parameters `names`).  Those
+    that are `held` rest on a limit, and are taken as given there.
     """
 
     squares: float
@@ -229,6 +230,7 @@ class Fit:
     names: tuple[str, ...]
     covariance: Array | None
     observations: tuple[Fitted, ...]
+    held: tuple[str, ...] = ()
 
 
 Watch = Callable[[Progress], bool]

@@ -37,6 +37,9 @@ Indices = NDArray[np.int64]
 BINDS = 1e-7
 """Least push (scaled) of an inequality that counts as an equality."""
 
+COUNTED = 9
+"""Digits behind the point to which a count of numbers is free of rounding."""
+
 LOST = 1e-6
 """How far the inverse may miss the unit matrix on the parameters before it is no inverse."""
 
@@ -57,7 +60,7 @@ def fit(path: Trajectory) -> Fit | None:
         count = sum(len(model.residuals) for model in models)
         told = tuple(model.told(None, None) for model in models)
         return Fit(squares, count, None, None, weighted, names, None, told)
-    count, numbers = len(determined), float(determined.sum())
+    count, numbers = len(determined), round(float(determined.sum()), COUNTED)
     freedom = count - numbers
     spread = float(np.sqrt(squares / freedom)) if freedom > 1e-6 else None
     size = 1.0 if weighted else spread
@@ -65,7 +68,8 @@ def fit(path: Trajectory) -> Fit | None:
     ends = np.cumsum([len(model.residuals) for model in models])[:-1]
     parts = np.split(determined, ends)
     told = tuple(model.told(size, part) for model, part in zip(models, parts, strict=True))
-    return Fit(squares, count, freedom, spread, weighted, names, covariance, told)
+    held = tuple(name for name, free in zip(names, inverse.free, strict=True) if not free)
+    return Fit(squares, count, freedom, spread, weighted, names, covariance, told, held)
 
 
 class _Model:
@@ -141,6 +145,7 @@ class _Inverse:
     def __init__(self, path: Trajectory, slopes: sp.csr_matrix) -> None:
         program = path.program
         self.determined: Array | None = None
+        self.free = np.zeros(0, bool)  # of the parameters, those that no limit holds
         free, rows = _allowed(path)
         matrix = _system(path, slopes, free, rows)
         where = program.layout
@@ -156,10 +161,11 @@ class _Inverse:
         if solved is None:
             return
         count = len(parameters)
+        self.free = position[parameters] >= 0
         own = np.where(position[parameters] >= 0, position[parameters], 0)
-        block = solved[own][:, :count] * (position[parameters] >= 0)[:, None]
+        block = solved[own][:, :count] * self.free[:, None]
         sizes = program.scale[parameters]
-        self.of_parameters = (block + block.T) / 2 * sizes[:, None] * sizes
+        self.of_parameters = (block + block.T) / 2 * sizes[:, None] * sizes + 0.0  # no -0
         determined = np.asarray((slopes[:, free] @ solved[: len(free), count:]).diagonal()).ravel()
         if np.any(determined < -LOST) or np.any(self.of_parameters.diagonal() < 0) or np.any(determined > 1 + LOST):
             return

@@ -199,8 +199,10 @@ def test_a_parameter_on_its_bound_does_not_vary():
         endpoints=["y(0) = a"],
     )
     assert solution.parameters["b"] == pytest.approx(0.5, abs=1e-7)
-    assert solution.fit.freedom == pytest.approx(3)
+    assert solution.fit.freedom == 3
     assert sigmas(solution) == pytest.approx({"a": np.sqrt(solution.value / 3 / 4), "b": 0.0}, rel=1e-6)
+    assert solution.fit.held == ("b",)
+    assert any(note.startswith("b rests on its limit") for note in solution.notes)
 
 
 def test_an_end_may_be_free_beyond_the_observations():
