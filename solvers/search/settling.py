@@ -22,6 +22,7 @@ SLOWEST = 0.95
 """The slowest fall of the changes from mesh to mesh that is counted on ..."""
 SERIES = 1.25
 """... and how much more than such a series adds up to its rest may be, as the factor itself grows."""
+ROUNDING = float(np.finfo(float).eps)
 ROOT = 3
 """The value may grow as fast as the third root of what is missing of the conditions, where no curve reaches beyond."""
 TORN_MESHES = 4
@@ -82,6 +83,7 @@ def worth_of_misses(path: Trajectory) -> float:
     program = path.program
     values = program.numbers.constraints(path.z / program.scale)
     missed = np.maximum(np.maximum(program.row_lower - values, values - program.row_upper), 0.0)
+    missed += ROUNDING * np.abs(values)  # (y(1) - 1)^2 + 1 = 1 holds for all that is within 1e-8 of it
     return ROOT * float(missed @ np.abs(path.row_multipliers * program.row_scale))
 
 

@@ -319,3 +319,12 @@ def test_a_convex_problem_has_no_better_curve_nearby_wherever_its_controls_switc
                    endpoints=["y(0) = 10", "y'(0) = 0"])  # fmt: skip
     solution = solve(assemble(read(json.dumps({"format": 1, "title": "test", **members}).encode())))
     assert solution.verdict is Verdict.GLOBAL_MINIMUM
+
+
+def test_a_condition_that_holds_nearby_too_is_part_of_the_stated_error():
+    """(y(1) - 1)^2 = 0 written so that rounding hides it: the shortest way has the length sqrt(2)."""
+    members = over(1, unknowns={"y": {}}, functional={"seek": "minimum", "integrand": "sqrt(1 + y'^2)"},
+                   endpoints=["y(0) = 0", "(1 - 2)^2 + (y(1) - 1)^2 = 1"])  # fmt: skip
+    solution = solve(assemble(read(json.dumps({"format": 1, "title": "test", **members}).encode())))
+    assert solution.value == pytest.approx(math.sqrt(2), abs=solution.value_error, rel=0)
+    assert solution.value_error < 1e-6
