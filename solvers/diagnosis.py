@@ -16,7 +16,12 @@ NOTHING_KEPT = "No best curve had been found by then"
 
 OUT_OF_TIME = f"The time limit was reached before the tolerance. {KEPT}."
 
-CUT_SHORT = (End.TIME.value, End.FAR.value, End.POINTS.value, End.STOPPED.value)
+BLOCKED = (
+    f"A finer mesh could not be solved from the curve of the one before. {KEPT}. "
+    "A guess nearer to the curve, bounds on the unknowns or a simpler version of the problem may help."
+)
+
+CUT_SHORT = (End.TIME.value, End.FAR.value, End.POINTS.value, End.STOPPED.value, End.FAILED.value)
 COARSE = 0.1
 """Relative error of a mesh that has hardly anything of the curve."""
 HARDLY = 1.5
@@ -62,6 +67,8 @@ def diagnose(pursuit: Pursuit) -> Diagnosis | None:
         sentence += " A guess or a bound that avoids it helps."
     else:
         sentence = OUT_OF_TIME if pursuit.end is End.TIME else _SENTENCES[pursuit.end]
+        if pursuit.end is End.FAILED and pursuit.blocked:
+            sentence = BLOCKED
         if not pursuit.solved:
             sentence = sentence.replace(KEPT, NOTHING_KEPT)
         if pursuit.end in (End.TIME, End.FAR):
@@ -107,7 +114,10 @@ def _what_helps(pursuit: Pursuit) -> str:
                 "raise `solve.time_limit` several times, or try a shorter range first.")  # fmt: skip
     factor = (errors[0] / errors[-1]) ** (1 / (len(errors) - 1))
     if factor < HARDLY or pursuit.end is End.FAR:
-        return (f"The relative error has hardly fallen over {len(errors)} meshes ({errors[0]:.1e}, now "
+        fallen = (
+            "hardly fallen" if factor < HARDLY else f"fallen {factor:.2g} times from mesh to mesh at growing effort"
+        )
+        return (f"The relative error has {fallen} over {len(errors)} meshes ({errors[0]:.1e}, now "
                 f"{errors[-1]:.1e}), so that more time alone may not do: loosen `solve.tolerance`, or look whether "
                 "the curve has corners or layers that the problem could name as places, or a control that has to "
                 "jump ever more often.")  # fmt: skip

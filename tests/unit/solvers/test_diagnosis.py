@@ -114,13 +114,29 @@ def test_what_helps_is_what_was_seen(errors, advice):
     assert advice in diagnose(found).sentence
 
 
-def test_what_is_out_of_reach_does_not_ask_for_more_time():
+@pytest.mark.parametrize(
+    "errors, fallen",
+    [((0.09, 0.08, 0.07), "hardly fallen over 3 meshes"),
+     ((0.09, 0.05, 0.02), "fallen 2.1 times from mesh to mesh at growing effort over 3 meshes")],
+)  # fmt: skip
+def test_what_is_out_of_reach_does_not_ask_for_more_time(errors, fallen):
     found = pursuit(End.FAR)
     found.paths.append(None)
-    found.steps += [mesh(error) for error in (0.09, 0.05, 0.02)]
+    found.steps += [mesh(error) for error in errors]
     sentence = diagnose(found).sentence
-    assert "hardly fallen over 3 meshes" in sentence
+    assert fallen in sentence
     assert "time_limit" not in sentence
+
+
+def test_a_mesh_that_cannot_be_solved_does_not_blame_the_first_guesses():
+    found = pursuit(End.FAILED)
+    assert "default guesses" in diagnose(found).sentence
+    found.paths.append(None)
+    found.blocked = True
+    sentence = diagnose(found).sentence
+    assert "finer mesh could not be solved" in sentence
+    assert "best curve so far is kept" in sentence
+    assert "default guesses" not in sentence
 
 
 def test_a_curve_that_is_not_feasible_yet_says_what_it_misses_and_by_how_much():
