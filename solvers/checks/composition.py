@@ -12,7 +12,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable, Iterable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from enum import Enum
 
 from solvers.checks.quadratic import Quadratic, add_to, bends, multiplied, nowhere_negative
@@ -86,8 +86,8 @@ def shape_of(tree: Node, leaf: Leaf, unfold: Unfold) -> Shape:
             shape = shape_of(inner, leaf, unfold)
             return Shape(shape.bend, 0.0 if shape.low >= 0 else -INF, 0.0 if shape.high <= 0 else INF)
         case Call(function="sqrt", arguments=(inner,)) if _norm(inner, leaf, unfold):
-            shape = shape_of(inner, leaf, unfold)
-            return _call("sqrt", [shape]) if shape.bend is Bend.GIVEN else Shape(Bend.CONVEX, 0.0, INF)
+            root = _call("sqrt", [shape_of(inner, leaf, unfold)])
+            return root if root.bend is Bend.GIVEN else replace(root, bend=Bend.CONVEX)
         case Lookup(arguments=arguments):
             return _lookup(tree, [shape_of(part, leaf, unfold) for part in arguments])
         case Call(function=function, arguments=arguments):

@@ -92,6 +92,9 @@ def known(problem: Problem, constants: dict[str, float], first: float, last: flo
         if target is not None:
             low, high = ranges.get(target, (-INF, INF))
             ranges[target] = _narrowed(condition, constants, low, high)
+    for pair in same_rates(problem):
+        both = [ranges.get(quantity, (-INF, INF)) for quantity in pair]
+        ranges |= dict.fromkeys(pair, (max(low for low, _ in both), min(high for _, high in both)))
     numbers = {p.name: Shape(Bend.AFFINE, p.lower, p.upper) for p in problem.parameters}
     numbers |= {name: Shape(Bend.GIVEN, value, value) for name, value in constants.items()}
     numbers[problem.independent] = numbers[MIDDLE] = Shape(Bend.GIVEN, first, last)
@@ -103,6 +106,14 @@ def known(problem: Problem, constants: dict[str, float], first: float, last: flo
         return Shape(Bend.AFFINE, *ranges.get((node.name, node.order), (-INF, INF)))
 
     return leaf
+
+
+def same_rates(problem: Problem) -> Iterator[tuple[tuple[str, int], tuple[str, int]]]:
+    """The derivatives that a line of the dynamics calls by the name of an unknown, as in y' = u, with that name."""
+    names = {unknown.name for unknown in problem.unknowns}
+    for line in problem.dynamics:
+        if line.determines is not None and isinstance(line.right, Name) and line.right.name in names:
+            yield line.determines, (line.right.name, line.right.order)
 
 
 def _narrowed(condition: Condition, constants: dict[str, float], low: float, high: float) -> tuple[float, float]:

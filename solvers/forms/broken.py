@@ -19,16 +19,18 @@ from numpy.typing import NDArray
 
 from solvers.checks import weierstrass
 from solvers.checks.composition import Bend, Shape, shape_of
-from solvers.checks.convexity import known, unfolding
+from solvers.checks.convexity import known, same_rates, unfolding
+from solvers.checks.lower_bound import best_possible
 from solvers.checks.sampling import Sampler
 from solvers.deadline import Deadline
-from solvers.formula.nodes import At, Name
+from solvers.formula.nodes import At, Name, Node
 from solvers.problem import Parameter, Place, Problem, Seek
 from solvers.search.pursuit import go_on, pursue
 from solvers.search.record import End, Pursuit
 from solvers.search.signals import SWITCH
 from solvers.solution import Status, Watch
 from solvers.transcription.evaluation import mapped
+from solvers.transcription.limits import number
 from solvers.transcription.lowering import Quantity
 from solvers.transcription.trajectory import Trajectory
 
@@ -49,11 +51,10 @@ SAME = 1e-3
 def with_corner(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursuit | None:
     """A better pursuit of the same problem whose curve has a corner; None where none is needed or found."""
     problem = base.problem
-    plain = not problem.dynamics and len(problem.places) == 2 and problem.seek is not Seek.STATIONARY
-    if not base.solved or not plain or len(problem.unknowns) != 1 or problem.unknowns[0].order != 1:
+    if not base.solved or (slope := _only_slope(problem)) is None:
         return None
     path = base.paths[-1]
-    if convex_in(problem, (problem.unknowns[0].name, 1), float(path.places[0]), float(path.places[-1])):
+    if convex_in(problem, slope, float(path.places[0]), float(path.places[-1])):
         return None
     with np.errstate(all="ignore"):
         sampler = Sampler(path)
@@ -78,24 +79,74 @@ def with_corner(base: Pursuit, watch: Watch | None, deadline: Deadline) -> Pursu
     return best
 
 
+def corner_at_once(problem: Problem, watch: Watch | None, deadline: Deadline) -> Pursuit | None:
+    """A curve with a corner that no curve betters, as the range of the integrand shows; None where none is found.
+
+    Looked for where the integrand is proved to bend the wrong way in a slope with limits to both sides: then the slope
+    leaps from limit to limit, and finer meshes alone show no more than one does.
+    """
+    slope = _only_slope(problem)
+    if slope is None or not _wrongly_bent(problem, slope) or not np.isfinite(bound := best_possible(problem)):
+        return None
+    found = with_corner(pursue(problem, watch, deadline, meshes=1), watch, deadline)
+    if found is None or found.end is not End.CONVERGED:
+        return None
+    reached = abs(found.paths[-1].value - bound) <= problem.options.tolerance * found.value_size
+    return found if reached else None
+
+
+def _wrongly_bent(problem: Problem, slope: Quantity) -> bool:
+    """Whether the integrand is proved to be concave (for a maximum: convex) in a slope with limits to both sides."""
+    constants = {c.name: c.value for c in problem.constants}
+    free = any(isinstance(place.tree, Name) and place.tree.name not in constants for place in problem.places)
+    if problem.integrand is None or problem.integrals or free:
+        return False
+    first, last = (number(place.tree, constants) for place in problem.places)
+    limits = known(problem, constants, first, last)(Name(*slope))
+    shape = _shape_in(problem, problem.integrand, slope, first, last)
+    bent = shape.convex if problem.seek is Seek.MAXIMUM else shape.concave
+    return bent and not shape.affine and bool(np.isfinite(limits.low) and np.isfinite(limits.high))
+
+
+def _only_slope(problem: Problem) -> Quantity | None:
+    """The slope of the only curve, or the control that stands for it (y' = u); None where there is more to steer."""
+    if len(problem.places) != 2 or problem.seek is Seek.STATIONARY:
+        return None
+    first, *others = problem.unknowns
+    if first.order != 1:
+        return None
+    if not problem.dynamics and not others:
+        return first.name, 1
+    if len(problem.dynamics) == len(others) == 1 and list(same_rates(problem)) == [
+        ((first.name, 1), (others[0].name, 0))
+    ]:
+        return others[0].name, 0
+    return None
+
+
 def convex_in(problem: Problem, quantity: Quantity, first: float, last: float) -> bool:
     """Whether the integrand, with all multiples of integrals that conditions hold, is proved to be convex (for a
     maximum: concave) in a slope or another control, whatever the rest is: then no other value of it gains anything.
 
     That holds for a range that runs forwards, and for controls that come in linearly in all other formulas.
     """
-    whole = known(problem, {c.name: c.value for c in problem.constants}, first, last)
-    unfold = unfolding(problem)
-
-    def leaf(node: Name | At) -> Shape:
-        own = isinstance(node, Name) and (node.name, node.order) == quantity
-        return whole(node) if own else replace(whole(node), bend=Bend.GIVEN)
-
     if problem.integrand is None or not first < last:
         return False
-    shape = shape_of(problem.integrand, leaf, unfold)
+    shape = _shape_in(problem, problem.integrand, quantity, first, last)
     bends = shape.concave if problem.seek is Seek.MAXIMUM else shape.convex
-    return bends and all(shape_of(condition.body, leaf, unfold).affine for condition in problem.integrals)
+    return bends and all(_shape_in(problem, c.body, quantity, first, last).affine for c in problem.integrals)
+
+
+def _shape_in(problem: Problem, tree: Node, quantity: Quantity, first: float, last: float) -> Shape:
+    """The shape of a formula as a function of one slope or control, also by its other name, whatever the rest is."""
+    whole = known(problem, {c.name: c.value for c in problem.constants}, first, last)
+    names = {quantity, *(slope for slope, control in same_rates(problem) if control == quantity)}
+
+    def leaf(node: Name | At) -> Shape:
+        own = isinstance(node, Name) and (node.name, node.order) in names
+        return whole(node) if own else replace(whole(node), bend=Bend.GIVEN)
+
+    return shape_of(tree, leaf, unfolding(problem))
 
 
 def _left_to_gain(pursuit: Pursuit) -> float:
@@ -156,12 +207,20 @@ def _bent(problem: Problem, path: Trajectory, first: float, second: float) -> Pr
     corner = start + (high - low - second * (end - start)) / (first - second)
     if not min(start, end) < corner < max(start, end):
         return None
-    name, unknown = f"{SWITCH} 1", problem.unknowns[0]
-    guess = ((start, low), (corner, low + first * (corner - start)), (end, high))
+    name = f"{SWITCH} 1"
+    lines: list[tuple[tuple[float, float], ...]] = [
+        ((start, low), (corner, low + first * (corner - start)), (end, high))
+    ]
+    if len(problem.unknowns) > 1:  # the control that stands for the slope
+        beside = corner + SAME * (end - corner)
+        lines.append(((start, first), (corner, first), (beside, second), (end, second)))
     room = sorted((float(start + 0.01 * (end - start)), float(end - 0.01 * (end - start))))
     return replace(
         problem,
         places=(problem.places[0], Place(Name(name), name), problem.places[1]),
         parameters=(*problem.parameters, Parameter(name, room[0], room[1], float(corner))),
-        unknowns=(replace(unknown, guess=tuple((float(at), float(value)) for at, value in guess)),),
+        unknowns=tuple(
+            replace(unknown, guess=tuple((float(at), float(value)) for at, value in line))
+            for unknown, line in zip(problem.unknowns, lines, strict=True)
+        ),
     )

@@ -10,7 +10,7 @@ import numpy as np
 
 from solvers.deadline import Deadline
 from solvers.forms.affine import Reduced, reduced
-from solvers.forms.broken import with_corner
+from solvers.forms.broken import corner_at_once, with_corner
 from solvers.forms.first_look import at_constant_speed, first_look
 from solvers.forms.gauge import Form, Gauged
 from solvers.forms.jumping import solve_without_slopes
@@ -72,6 +72,8 @@ def _solve(stated: Problem, problem: Problem, watch: Watch | None, deadline: Dea
     if (alike := reduced(problem)) is not None:
         pursuit = solve_without_slopes(alike, watch, deadline)
         return Found(pursuit, None, reduced=alike if isinstance(alike, Reduced) else None)
+    if (leaping := corner_at_once(problem, watch, deadline)) is not None:
+        return Found(leaping, None)
     look = cache(lambda: first_look(problem))
     signed = one_signed(stated)
     if not signed and (away := runs_away(problem, lambda: look().curve, watch, deadline)) is not None:

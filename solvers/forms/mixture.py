@@ -30,7 +30,7 @@ from solvers.search.given import solve_as_given
 from solvers.search.record import End, Pursuit
 from solvers.solution import Finding, Status, Watch
 from solvers.transcription.limits import quantity_bounds
-from solvers.transcription.lowering import Quantity, primed
+from solvers.transcription.lowering import Quantity, primed, simple_bound
 from solvers.transcription.trajectory import Trajectory
 
 SHARE = "share of"
@@ -102,11 +102,10 @@ def _relaxed(problem: Problem, path: Trajectory, quantity: Quantity, slopes: tup
     def holds(tree: Node) -> bool:
         return any(isinstance(node, Name) and (node.name, node.order) == quantity for node in walk(tree))
 
-    others = [written_out(c.body, problem) for c in problem.constraints if isinstance(c.body, Name) is False]
+    conditions = [*(c for c in problem.constraints if simple_bound(c) != quantity), *problem.integrals]
+    others = [_without_rates(condition.body, problem) for condition in conditions]
     linear = all(linear_in(rate, [own]) for rate in _rates(problem))
     if problem.integrand is None or not linear or any(holds(tree) for tree in others):
-        return None
-    if problem.integrals and any(holds(written_out(c.body, problem)) for c in problem.integrals):
         return None
     if any(isinstance(node, At | Call) and getattr(node, "function", "integral") == "integral"
            for node in walk(problem.endpoint or Number(0.0, "0")) if isinstance(node, Call)):  # fmt: skip
@@ -124,7 +123,9 @@ def _relaxed(problem: Problem, path: Trajectory, quantity: Quantity, slopes: tup
         shares = (Product((Name(share.name), first), (False, False)), Product((rest, second), (False, False)))
         return Sum(shares, (False, False))
 
-    integrand = written_out(problem.integrand, problem)
+    integrand = _without_rates(problem.integrand, problem)
+    if any(_implicit(tree, problem, quantity) for tree in (integrand, *others)):
+        return None
 
     def with_value(copy: Node) -> Node:
         return substitute(
@@ -134,6 +135,23 @@ def _relaxed(problem: Problem, path: Trajectory, quantity: Quantity, slopes: tup
     line = Equation(own, mixed(lambda copy: copy), quantity if quantity[1] else None, f"mean of {primed(quantity)}", "")
     unknowns = (*problem.unknowns, *copies, share)
     return replace(problem, unknowns=unknowns, integrand=mixed(with_value), dynamics=(*problem.dynamics, line))
+
+
+def _without_rates(tree: Node, problem: Problem) -> Node:
+    """A formula with the right sides of the dynamics in place of the derivatives that these determine: what is mixed
+    enters through them as well."""
+    rates = {line.determines: written_out(line.right, problem) for line in problem.dynamics if line.determines}
+    tree = written_out(tree, problem)
+    for _ in rates:  # a right side may hold what another line determines
+        tree = substitute(tree, lambda node: rates.get((node.name, node.order)) if isinstance(node, Name) else None)
+    return tree
+
+
+def _implicit(tree: Node, problem: Problem, quantity: Quantity) -> bool:
+    """Whether a formula holds a slope that may follow from the control in a line that is not explicit."""
+    slopes = {(unknown.name, unknown.order) for unknown in problem.unknowns if unknown.order} - {quantity}
+    open_ = any(line.determines is None for line in problem.dynamics)
+    return open_ and any(isinstance(node, Name) and (node.name, node.order) in slopes for node in walk(tree))
 
 
 def _moving(problem: Problem) -> list[Name]:

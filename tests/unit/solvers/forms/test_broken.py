@@ -4,12 +4,12 @@ import numpy as np
 import pytest
 
 from solvers.deadline import in_seconds
-from solvers.forms.broken import _edge_over, convex_in, with_corner
+from solvers.forms.broken import _edge_over, convex_in, corner_at_once, with_corner
 from solvers.search.pursuit import pursue
 from solvers.search.structure import present_switches
 from solvers.solution import Verdict
 from solvers.solve import solve
-from tests.unit.solvers.problems import shape
+from tests.unit.solvers.problems import shape, stated
 
 SLOPE = "y", 1
 WELLS = {"functional": {"integrand": "(y'^2 - 1)^2"}, "endpoints": ["y(0) = 0", "y(3) = 1"]}
@@ -127,3 +127,25 @@ def test_where_the_slope_is_limited_what_switches_is_found_as_given():
     ))  # fmt: skip
     assert found.verdict in (Verdict.LOCAL_MAXIMUM, Verdict.GLOBAL_MAXIMUM)
     assert abs(found.value - 1.25 * np.sqrt(2)) <= found.value_error < 1e-7
+
+
+@pytest.mark.parametrize("slope", ["u", "y'"])
+def test_the_tent_is_the_longest_curve_also_where_a_control_stands_for_its_slope(slope):
+    """Closed form: slope 1 up to 0.65, then -1, so that 0.65 - 0.35 = 0.3; no curve is longer than sqrt(2)."""
+    problem = stated(unknowns={"y": {}, "u": {"within": [-1, 1]}}, dynamics=["y' = u"],
+                     functional={"seek": "maximum", "integrand": f"sqrt(1 + {slope}^2)"},
+                     endpoints=["y(0) = 0", "y(1) = 3/10"])  # fmt: skip
+    found = corner_at_once(problem, None, in_seconds(30))
+    (corner,) = present_switches(found.paths[-1])
+    assert min(abs(corner.place - 0.65), abs(corner.place - 0.35)) < 1e-9
+    solution = solve(problem)
+    assert solution.verdict is Verdict.GLOBAL_MAXIMUM
+    assert abs(solution.value - np.sqrt(2)) <= solution.value_error < 1e-7
+
+
+@pytest.mark.parametrize("integrand", ["u^2", "(u^2 - 1)^2", "y - u^2"])
+def test_no_corner_is_tried_at_once_where_nothing_shows_that_none_does_better(integrand):
+    """The least is convex in the control, neither way bent, without bound."""
+    problem = stated(unknowns={"y": {}, "u": {"within": [-1, 1]}}, dynamics=["y' = u"],
+                     functional={"integrand": integrand}, endpoints=["y(0) = 0", "y(1) = 3/10"])  # fmt: skip
+    assert corner_at_once(problem, None, in_seconds(30)) is None

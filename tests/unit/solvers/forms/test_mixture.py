@@ -76,3 +76,12 @@ def test_where_the_mean_does_not_act_as_its_parts_nothing_is_said():
                          unknowns={"x": {}, "u": {"within": [-1, 1]}}, endpoints=["x(0) = 0"],
                          dynamics=["x' = u^2"]))  # fmt: skip
     assert found.diagnosis is None or found.diagnosis.reason != "wiggles"
+
+
+def test_what_is_mixed_counts_also_where_it_is_called_by_the_slope_that_it_determines():
+    """With y' = u the integrand is 2*u^4 - 2*u^2 + 1 + y^2, which is at least 1/2: nothing below that is approached."""
+    found = solve(stated(independent={"name": "t", "from": 0, "to": 1}, unknowns={"y": {}, "u": {"within": [-2, 2]}},
+                         dynamics=["y' = u"], functional={"integrand": "(u^2 - 1)^2 + y'^4 + y^2"},
+                         endpoints=["y(0) = 0", "y(1) = 0"]))  # fmt: skip
+    assert found.value >= 0.5 - 1e-6
+    assert found.verdict in (Verdict.NO_OPTIMUM, Verdict.NOT_A_MINIMUM)
