@@ -27,6 +27,7 @@ from solvers.formula.derivative import derivative
 from solvers.formula.identity import vanishes
 from solvers.formula.nodes import SIDE, At, Call, Lookup, Name, Node, Number, Sum, walk
 from solvers.formula.substitute import at_place, substitute
+from solvers.formula.substitute import written_out as with_abbreviations
 from solvers.problem import Condition, Parameter, Problem, Seek
 from solvers.transcription.functions import ROUNDED
 from solvers.transcription.lowering import Quantity, simple_bound
@@ -144,14 +145,7 @@ def _slopes(problem: Problem) -> list[Name]:
 
 def written_out(tree: Node, problem: Problem) -> Node:
     """A formula with its abbreviations written out; without places in any text."""
-    known: dict[str, Node] = {}
-
-    def value(node: Node) -> Node | None:
-        return known.get(node.name) if isinstance(node, Name) and not node.order else None
-
-    for name, whole in problem.where:
-        known[name] = substitute(bare(whole), value)
-    return substitute(bare(tree), value)
+    return with_abbreviations(bare(tree), [(name, bare(whole)) for name, whole in problem.where])
 
 
 def _valued(tree: Node, problem: Problem) -> Node:

@@ -11,7 +11,7 @@ from dataclasses import replace
 from functools import partial
 
 from solvers.formula.nodes import SIDE, Call, Name, Negative, Node, Number, walk
-from solvers.formula.substitute import at_place, substitute
+from solvers.formula.substitute import at_place, substitute, written_out
 from solvers.problem import MIDDLE, Condition, Place, Problem
 
 ONE = Number(1.0, "1")
@@ -26,17 +26,10 @@ def with_limits_at_kinks(problem: Problem, jumping: bool) -> Problem:
 
 
 def _stated(problem: Problem, jumping: bool) -> Iterator[Condition]:
-    where: dict[str, Node] = {}
-
-    def written_out(tree: Node) -> Node:
-        return substitute(tree, lambda node: where.get(node.name) if isinstance(node, Name) else None)
-
-    for name, tree in problem.where:
-        where[name] = written_out(tree)
     states = {(unknown.name, order) for unknown in problem.unknowns for order in range(unknown.order)}
     functions = {unknown.name for unknown in problem.unknowns}
     for constraint in problem.constraints:
-        body = written_out(constraint.body)
+        body = written_out(constraint.body, problem.where)
         names = {(node.name, node.order) for node in walk(body) if isinstance(node, Name) and node.name in functions}
         bent = {node.arguments[1] for node in walk(body) if isinstance(node, Call) and node.function == SIDE}
         if not names or not names <= states:

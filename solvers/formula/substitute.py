@@ -33,6 +33,18 @@ def at_place(tree: Node, place: Node, side: str, independent: str, functions: Co
     return substitute(tree, value)
 
 
+def written_out(tree: Node, where: Sequence[tuple[str, Node]]) -> Node:
+    """The tree with its abbreviations written out; `where` is in an order in which each uses only earlier ones."""
+    known: dict[str, Node] = {}
+
+    def value(node: Node) -> Node | None:
+        return known.get(node.name) if isinstance(node, Name) and not node.order else None
+
+    for name, whole in where:
+        known[name] = substitute(whole, value)
+    return substitute(tree, value)
+
+
 def depth(tree: Node) -> int:
     """How many nodes of the tree lie within each other."""
     deepest, level = 0, [tree]

@@ -40,6 +40,13 @@ def excess(path: Trajectory) -> tuple[Array, float]:
         pushes = np.abs(path.bound_multipliers[where.inner])[:, bounded]
         found = _of(path, _states, CLOSE, bounded, (lower[bounded], upper[bounded]), pushes, sizes_of(path)[0][bounded])
         worst, gained = found
+    lower, upper = quantity_bounds(compiled)[2:]
+    arcs, bounded = on_arcs(path), np.flatnonzero(np.isfinite(lower) | np.isfinite(upper))
+    if arcs.any() and bounded.size:
+        pushes = np.abs(path.bound_multipliers[where.controls])[:, bounded]
+        sizes = sizes_of(path)[1][bounded]
+        more, gain = _of(path, _controls, CLOSE, bounded, (lower[bounded], upper[bounded]), pushes, sizes, arcs)
+        worst, gained = np.maximum(worst, more), gained + gain
     limits = np.array([interval_of(c, constants_of(compiled)) for c in compiled.pointwise]).reshape(-1, 2)
     unequal = np.flatnonzero(limits[:, 0] < limits[:, 1])
     if unequal.size:
@@ -62,12 +69,14 @@ def _of(
     limits: tuple[Array, Array],
     pushes: Array,
     sizes: Array,
+    where: NDArray[np.bool_] | None = None,
 ) -> tuple[Array, float]:
-    """The same for some quantities J with their limits, pushes at the points (M x J) and sizes."""
+    """The same for some quantities J with their limits, pushes at the points (M x J) and sizes, `where` it counts."""
 
     def outside(intervals: Indices, places: Array) -> Array:
         found = values(path, intervals, places)[:, :, chosen]
-        return np.nan_to_num(np.maximum(limits[0] - found, found - limits[1]))
+        left = np.nan_to_num(np.maximum(limits[0] - found, found - limits[1]))
+        return left if where is None else np.where(where[intervals, None, None], left, 0.0)
 
     mesh = path.program.mesh
     each = np.arange(len(mesh.intervals))
@@ -79,7 +88,7 @@ def _of(
         here = np.flatnonzero(counts[:, j])
         at, step = grid[first[here, :, j].argmax(axis=1)], float(np.diff(grid).max())
         for _ in range(CLOSER):
-            places = np.clip(at[:, None] + step * GRID, -1.0, 1.0)
+            places = np.clip(at, step - 1, 1 - step)[:, None] + step * GRID  # all apart, or no parabola is theirs
             there = outside(here, places)[:, :, j]
             at, step = places[np.arange(len(here)), there.argmax(axis=1)], step * (GRID[1] - GRID[0])
         left[here, j] = np.maximum(left[here, j], _vertex(there))
@@ -106,6 +115,18 @@ def _at(modes: Array, intervals: Indices, places: Array) -> Array:
 
 def _states(path: Trajectory, intervals: Indices, places: Array) -> Array:
     return _at(path.state_modes, intervals, places)
+
+
+def _controls(path: Trajectory, intervals: Indices, places: Array) -> Array:
+    return _at(path.control_modes, intervals, places)
+
+
+def on_arcs(path: Trajectory) -> NDArray[np.bool_]:
+    """The intervals along which a state is held on its limit: it determines a control there, which may jump at the ends
+    of the arc only.  Elsewhere controls are taken as far as their bounds, whatever polynomials do where they switch."""
+    lowered = path.program.compiled.lowered
+    stretches = [held.stretch for held in lowered.problem.held if (held.name, held.order) in lowered.states]
+    return np.isin(path.program.mesh.stretch, stretches)
 
 
 def _bodies(path: Trajectory, intervals: Indices, places: Array) -> Array:

@@ -17,7 +17,7 @@ from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
 from solvers.search.contacts import contacts
-from solvers.search.excess import excess
+from solvers.search.excess import excess, on_arcs
 from solvers.transcription.collocation import Family
 from solvers.transcription.functions import linear_controls
 from solvers.transcription.mesh import Interval, Mesh, interval
@@ -77,7 +77,8 @@ def estimate(path: Trajectory) -> Estimate:
     """Local errors of a solved mesh.
 
     Controls in which all is linear are left out, as along a singular arc they are determined only through the states;
-    but where they are kept calm, what they are allowed must be enough for them.
+    but where they are kept calm, what they are allowed must be enough for them, and where a state is held on its limit
+    they are determined by it.
     """
     lowered = path.program.compiled.lowered
     loose = linear_controls(path.program.compiled)
@@ -91,7 +92,7 @@ def estimate(path: Trajectory) -> Estimate:
         kept = mesh.stretch == stretch
         allowed = _tails(controls[kept][:, :, [index]], (mesh.counts[kept] + 1) // 2)[0]
         errors[kept] = np.fmax(errors[kept], allowed)
-    controls[:, :, loose] = 0.0
+    controls[np.ix_(~on_arcs(path), np.arange(controls.shape[1]), np.array(loose, dtype=np.int64))] = 0.0
     control_errors, control_worst = _tails(controls, mesh.counts)
     bending = control_errors > NOISE * errors  # else its bends are those of its rounding
     shapes, bends = [], []

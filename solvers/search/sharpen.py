@@ -283,7 +283,8 @@ def _with_more_touches(base: Pursuit, sharp: Pursuit, watch: Watch | None, deadl
 def mesh_between(problem: Problem, path: Trajectory) -> Mesh:
     """Few intervals where everything is held, more where a control is free; with arcs along constraints a path's own.
 
-    What bends there bends wherever its limit does, and the path's mesh knows about that.
+    What bends there bends wherever its limit does, and the path's mesh knows about that.  The end is no point, unless a
+    state is held there: then its limit pushes at the end too.
     """
     labels = {condition.label for condition in problem.constraints}
     if any(h.name in labels for h in problem.held):
@@ -291,11 +292,13 @@ def mesh_between(problem: Problem, path: Trajectory) -> Mesh:
     pieces: list[Interval] = []
     calm = {c.stretch for c in problem.calm}
     held = {h.stretch for h in problem.held} - calm
-    last = len(problem.places) - 2
+    last, states = len(problem.places) - 2, path.program.compiled.lowered.states
+    pushed = any(h.stretch == last and (h.name, h.order) in states for h in problem.held)
     for stretch in range(last + 1):
         count, degree = (2, 5) if stretch in held else (4, 6)
         for k in range(count):
-            family = Family.GAUSS if stretch == last and k == count - 1 else Family.RADAU
+            ends = stretch == last and k == count - 1 and not pushed
+            family = Family.GAUSS if ends else Family.RADAU
             pieces.append(interval(stretch, k / count, (k + 1) / count, family, degree))
     return Mesh(tuple(pieces))
 

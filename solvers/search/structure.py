@@ -17,6 +17,7 @@ from numpy.typing import NDArray
 from solvers.formula.nodes import Name, Node, Number, Power, Product, Sum
 from solvers.problem import Calm, Held, Parameter, Place, Problem, Touch
 from solvers.search.contacts import well_begun
+from solvers.search.entries import smooth_entries
 from solvers.search.resting import can_rest
 from solvers.search.signals import SWITCH, Signal, Switch, limited, signals, switches
 from solvers.transcription.functions import Compiled
@@ -47,7 +48,9 @@ def without_switches(problem: Problem) -> Problem:
     """A problem as it was before its switches became places."""
     places = tuple(place for place in problem.places if not place.label.startswith(SWITCH + " "))
     parameters = tuple(p for p in problem.parameters if not p.name.startswith(SWITCH + " "))
-    return replace(problem, places=places, parameters=parameters, held=(), implied=(), calm=(), touches=())
+    endpoints = tuple(c for c in problem.endpoints if not c.label.startswith(SWITCH + ":"))
+    return replace(problem, places=places, parameters=parameters, endpoints=endpoints, held=(), implied=(), calm=(),
+                   touches=())  # fmt: skip
 
 
 def with_switches(
@@ -90,8 +93,9 @@ def with_switches(
         else:
             places.append(place)
     parameters = [*problem.parameters, *parameters]
+    entries = smooth_entries(path, places, [at for at, _ in spots], held)
     return replace(problem, places=tuple(places), parameters=tuple(parameters), held=held, implied=implied, calm=calm,
-                   touches=tuple(touches))  # fmt: skip
+                   touches=tuple(touches), endpoints=(*problem.endpoints, *entries))  # fmt: skip
 
 
 def _free_all_along(path: Trajectory, linear: list[Quantity]) -> bool:
