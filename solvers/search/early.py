@@ -15,7 +15,7 @@ from solvers.search.record import End, Pursuit
 from solvers.search.refinement import smooth_all_along
 from solvers.search.sharpen import agrees, alike, chatters, mesh_between, slow, with_more_switches, worse
 from solvers.search.signals import Switch, jumps_at_breaks, switches
-from solvers.search.structure import at_the_edge, shown_by, with_switches
+from solvers.search.structure import at_the_edge, hides_arcs, shown_by, with_switches
 from solvers.solution import Watch
 from solvers.transcription.functions import linear_controls
 from solvers.transcription.lowering import Quantity
@@ -162,7 +162,7 @@ def _stalls(sharp: Pursuit) -> bool:
 def _hopeful(sharp: Pursuit, base: Pursuit) -> bool:
     """Whether nothing speaks against a structure yet: on a coarse mesh a switch may still be far off its place."""
     path = sharp.paths[-1]
-    whole = not at_the_edge(path) and accumulation(path) is None  # else touches are missing
+    whole = not (at_the_edge(path) or hides_arcs(path)) and accumulation(path) is None  # else switches are missing
     return whole and agrees(sharp, base) and held_rightly(path)
 
 

@@ -22,6 +22,7 @@ from solvers.search.structure import (
     Release,
     at_the_edge,
     first_places,
+    hides_arcs,
     shown_by,
     shrinking,
     softened,
@@ -179,6 +180,8 @@ def with_structure(
             besides += 1
             one = with_switches(base.problem, apart, path, linear, loose)
             continue
+        if hides_arcs(path):
+            continue
         if now.end is not End.CONVERGED and not slow(now):
             go_on(now, watch, deadline, FURTHER)
             path = now.paths[-1]
@@ -186,12 +189,14 @@ def with_structure(
             break
     if pursuit is None or pursuit.end is End.CONVERGED or len(pursuit.steps) > 2 or chatters(pursuit):
         return pursuit
+    if hides_arcs(pursuit.paths[-1]):  # with them it may converge, to a value that is a little worse
+        return pursuit
     return go_on(pursuit, watch, deadline, FURTHER)
 
 
 def _uncalmed(pursuit: Pursuit | None, watch: Watch | None, deadline: Deadline) -> Trajectory | None:
     """The same without calming where that does not converge: what it calms may switch, and not run singular."""
-    if pursuit is None or not pursuit.problem.calm or not slow(pursuit):
+    if pursuit is None or not pursuit.problem.calm or not (slow(pursuit) or hides_arcs(pursuit.paths[-1])):
         return None
     path = pursuit.paths[-1]
     mesh = mesh_between(pursuit.problem, path)

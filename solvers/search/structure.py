@@ -37,6 +37,8 @@ TOUCHING = 3e-4
 """The same where one of its ends is a touch."""
 RESTING = 1e-6
 """How near to its limit, relative to its range, a state lies there all along, where a control is held besides."""
+HIDDEN = 0.3
+"""Share of the points of a stretch that a control spends on limits where it hides arcs."""
 FREE = 0.9
 """Share of the points off all limits at which a control counts as free all along."""
 
@@ -219,6 +221,19 @@ def smooth_contacts(path: Trajectory) -> list[int]:
         and {name for name, _, _ in on_limits(problem.held, index - 1) ^ on_limits(problem.held, index)} & labels
         and jumps[where.at_place[index] - 1].max(initial=0.0) <= SMOOTH
     ]
+
+
+def hides_arcs(path: Trajectory) -> bool:
+    """Whether a control rests on its limits along a good part of a stretch on which it is calmed: what switches there
+    is blurred, and costs little, but no singular arc."""
+    calm = path.program.compiled.lowered.problem.calm
+    stretch = path.program.layout.stretch
+    return any(
+        np.mean(signal.labels[stretch == c.stretch] != 0) > HIDDEN
+        for signal in (signals(path) if calm else ())
+        for c in calm
+        if signal.quantity == (c.name, c.order)
+    )
 
 
 def at_the_edge(path: Trajectory) -> bool:
