@@ -44,6 +44,8 @@ DENSE = 1200
 FINE_MARGIN = 1e-7
 """The margin then: only the multipliers' own errors remain."""
 LARGEST = 60_000
+SLIVER = 1e-6
+"""Width of an interval, relative to the range, below which a mesh only approaches a singular place."""
 
 
 def check(sampler: Sampler, deadline: Deadline = FOREVER, curve_error: float = 0.0) -> Check:
@@ -70,6 +72,7 @@ def falling(sampler: Sampler, curve_error: float = 0.0, deadline: Deadline = FOR
         directions = inertia.negative_directions(second, free, rows, margin, deadline)
     except TimeoutError:
         return None
+    directions = None if directions is None else _clear_of_slivers(sampler, directions)
     if directions is None or not directions.shape[1]:
         return None
     return np.asarray(directions[:, np.argmin(inertia.quotients(second, directions))])
@@ -95,6 +98,7 @@ def _decided(sampler: Sampler, deadline: Deadline, margin: float) -> Check:
     directions = inertia.negative_directions(second, free, rows, margin, deadline)
     if directions is None:
         return Check(NAME, Status.NOT_APPLICABLE, "The second variation could not be decided: its matrix is singular.")
+    directions = _clear_of_slivers(sampler, directions)
     if directions.shape[1]:
         again = replace(second, hessian=hessian_of_program(sampler.path))
         share = float(np.maximum(*(inertia.quotients(form, directions) for form in (second, again))).min())
@@ -106,6 +110,20 @@ def _decided(sampler: Sampler, deadline: Deadline, margin: float) -> Check:
                          f"in second order by {-share:.1e} of its size: {where}.", -share, margin, place)  # fmt: skip
     return Check(NAME, Status.NOT_APPLICABLE, "Not decided: the second variation vanishes in some direction (within "
                  f"{margin:.0e} of the functional), as along families of equally good curves.")  # fmt: skip
+
+
+def _clear_of_slivers(sampler: Sampler, directions: Array) -> Array:
+    """The directions (columns, in all variables) that do not lie mostly in slivers at a singular place.
+
+    There the discrete problem differs from the problem itself, however fine the mesh is, and proves nothing.
+    """
+    where, mesh = sampler.path.program.layout, sampler.path.program.mesh
+    thin = np.abs(sampler.length) < SLIVER * np.abs(sampler.span)
+    at = thin[mesh.owner]
+    inside = np.concatenate([where.inner[at].ravel(), where.controls[at].ravel()])
+    everywhere = np.concatenate([where.inner.ravel(), where.controls.ravel()])
+    share = (directions[inside] ** 2).sum(axis=0) / np.maximum((directions[everywhere] ** 2).sum(axis=0), 1e-300)
+    return np.asarray(directions[:, share < 0.5])
 
 
 def _sentence(sampler: Sampler, second: Second, free: Flags) -> str:

@@ -179,3 +179,18 @@ def test_the_kernel_is_all_that_rows_do_not_see(count, doubled, dimension):
     assert found.shape == (9, dimension)
     np.testing.assert_allclose(rows @ found, 0.0, atol=1e-12)
     np.testing.assert_allclose(found.T @ found, np.eye(dimension), atol=1e-12)
+
+
+SINGULAR = {
+    "independent": {"name": "x", "from": 0, "to": 1},
+    "unknowns": {"y": {}},
+    "functional": {"seek": "minimum", "integrand": "y^2*y'^2"},
+    "endpoints": ["y(0) = 0", "y(1) = 1"],
+}
+
+
+def test_what_a_mesh_does_at_a_singular_end_refutes_no_curve(solved, examine):
+    """With w = y^2/2 the integrand is w'^2: the curve y = sqrt(x), with the value 1/4, is the best there is."""
+    path = solved(SINGULAR)
+    assert path.value == pytest.approx(0.25, rel=1e-8)
+    assert examine(curvature.check, path).status is not Status.FAILED
