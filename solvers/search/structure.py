@@ -194,6 +194,8 @@ def present_switches(path: Trajectory) -> list[Switch]:
         if not place.label.startswith(SWITCH + " "):
             continue
         at, touching = float(path.places[index]), touches.get(place.label)
+        if touching is not None and all(_rests_along(path, touching, stretch) for stretch in (index - 1, index)):
+            continue  # within an arc that was seen as touches at its ends
         changed = on_limits(problem.held, index - 1) ^ on_limits(problem.held, index)
         names = {name for name, _, _ in changed} | ({touching[0][0]} if touching else set())
         after = where.first[where.at_place[index]]
@@ -295,6 +297,12 @@ def _held(path: Trajectory, places: Array, loose: Sequence[Release]) -> tuple[tu
         found += here[:most]
         implied += [one for one in here[most:] if _rests(path, one, inside)]
     return tuple(found), tuple(implied)
+
+
+def _rests_along(path: Trajectory, touching: tuple[Quantity, int], stretch: int) -> bool:
+    """Whether a state that touches its limit lies there along a whole stretch."""
+    inside = path.program.layout.stretch == stretch
+    return bool(inside.any()) and _rests(path, Held(stretch, *touching[0], touching[1]), inside)
 
 
 def _rests(path: Trajectory, held: Held, inside: NDArray[np.bool_]) -> bool:
