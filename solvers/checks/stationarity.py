@@ -252,9 +252,16 @@ def _multipliers(sampler: Sampler) -> list[Finding]:
 
 
 def _spread(sampler: Sampler, state: int) -> Array:
-    """The multipliers of a state's bounds at the points; where the state is held on one, the mean of each interval."""
-    quantity = sampler.compiled.lowered.states[state]
-    multipliers = sampler.path.bound_multipliers[sampler.path.program.layout.inner[:, state]]
+    """The multipliers of a state's bounds at the points; where the state is held on one, the mean of each interval.
+
+    What a condition at a place puts on the state there belongs to that condition.
+    """
+    quantity, where = sampler.compiled.lowered.states[state], sampler.path.program.layout
+    multipliers = sampler.path.bound_multipliers[where.inner[:, state]]
+    for conditioned, place, _ in sampler.compiled.fixed:
+        last = int(where.first[where.at_place[place]]) - 1
+        if conditioned == state and last >= 0 and where.ends_on_point(last):
+            multipliers[last] = 0.0
     return _even(sampler, multipliers, {h.stretch for h in sampler.problem.held if (h.name, h.order) == quantity})
 
 

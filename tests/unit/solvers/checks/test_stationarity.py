@@ -177,3 +177,15 @@ def test_the_figure_does_not_depend_on_the_units(solved, examine):
     path = solved({**scaled, "endpoints": [e.replace("1/3600", str(1 / 3600)) for e in scaled["endpoints"]]})
     assert examine(stationarity.check, path).status is Status.PASSED
     assert examine(stationarity.check, replace(path, costates=1.01 * path.costates)).status is Status.FAILED
+
+
+def test_what_a_way_point_puts_on_a_state_is_no_multiplier_of_its_limits(solved, examine):
+    """Least integral of x^2 + x'^2 by way of 1/2 in the middle: two arcs of sinh, the value is coth(1)/2."""
+    path = solved({
+        "independent": {"name": "t", "from": 0, "to": 2},
+        "unknowns": {"x": {"within": [-5, 0.65]}},
+        "functional": {"seek": "minimum", "integrand": "x'^2 + x^2"},
+        "endpoints": ["x(0) = 0", "x(1) = 0.5", "x(2) = 0"],
+    })  # fmt: skip
+    assert path.value == pytest.approx(0.5 / np.tanh(1), rel=1e-6)
+    assert examine(stationarity.check, path).status is Status.PASSED
