@@ -15,15 +15,16 @@ Reference: Hartl, Sethi, Vickson (1995), SIAM Review 37, section 4, on multiplie
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
 
 from solvers.checks import free_ends, stationarity
+from solvers.checks.idle import idle_arcs, with_right_signs
+from solvers.checks.multipliers import rate_rows, with_multipliers
 from solvers.checks.sampling import Sampler
-from solvers.transcription.collocation import Family
 from solvers.transcription.limits import quantity_bounds
 from solvers.transcription.trajectory import Trajectory
 
@@ -61,7 +62,7 @@ def unambiguous(path: Trajectory) -> Trajectory:
             sampler = Sampler(candidate)
             return max(stationarity.check(sampler).figure or 0.0, free_ends.check(sampler).figure or 0.0)
 
-    if not redundant_arcs(path) and not len(_calm_points(path)):
+    if not redundant_arcs(path) and not len(_calm_points(path)) and not idle_arcs(path):
         return path
     best, least, others = path, figure(path), without_redundancy(path)
     while least > GOOD and (other := next(others, None)) is not None:
@@ -89,29 +90,19 @@ def redundant_arcs(path: Trajectory) -> list[Arc]:
                 first, last = int(where.nodes[entry, state]), int(where.nodes[end, state])
                 own = np.union1d(where.inner[points, state], where.nodes[entry : end + 1, state])
                 inside = own[(own != first) & (own != last)]
-                arcs.append(Arc(inside, first, last, _rows(path, points, entry, end, state)))
+                arcs.append(Arc(inside, first, last, rate_rows(path, points, entry, end, state)))
     return arcs
-
-
-def _rows(path: Trajectory, points: Indices, entry: int, end: int, state: int) -> Indices:
-    """The rows of the program that hold the rate of a state along a stretch, and its end value where it has one."""
-    program, n = path.program, path.nodes.shape[1]
-    gauss = np.array([i.scheme.family is Family.GAUSS for i in program.mesh.intervals])
-    rank = np.cumsum(gauss) - 1
-    ends = [int(rank[k]) for k in range(entry, end) if gauss[k]]
-    return np.concatenate([program.rows.defects + points * n + state,
-                           program.rows.ends + np.array(ends, dtype=np.int64) * n + state])  # fmt: skip
 
 
 def without_redundancy(path: Trajectory) -> Iterator[Trajectory]:
     """The same curve with other multipliers: those limits dropped, costates continued from either side."""
     arcs, calm = redundant_arcs(path), _calm_points(path)
-    if not arcs and not len(calm):
-        return
     for forwards in (True, False) if arcs else (True,):
-        found = _chosen_anew(path, arcs, calm, forwards)
+        found = _chosen_anew(path, arcs, calm, forwards) if arcs or len(calm) else None
         if found is not None:
             yield found
+    if idle_arcs(path):
+        yield with_right_signs(path)
 
 
 def _calm_points(path: Trajectory) -> Indices:
@@ -125,7 +116,7 @@ def _calm_points(path: Trajectory) -> Indices:
 
 def _chosen_anew(path: Trajectory, arcs: list[Arc], calm: Indices, forwards: bool) -> Trajectory | None:
     """Multipliers with the limits dropped; None where they are not determined."""
-    program, where = path.program, path.program.layout
+    program = path.program
     size = abs(program.value_scale)
     z, numbers = path.z / program.scale, program.numbers
     gradient = numbers.gradient(z)
@@ -147,15 +138,7 @@ def _chosen_anew(path: Trajectory, arcs: list[Arc], calm: Indices, forwards: boo
     pull = -(gradient + jacobian.T @ rows)
     ends = np.array([arc.exit if forwards else arc.entry for arc in arcs], dtype=np.int64)
     bounds[ends] = pull[ends]
-    fixed = program.lower == program.upper
-    bounds[fixed] = pull[fixed]
-    physical = rows / program.row_scale * size
-    weights = np.concatenate([i.scheme.weights for i in program.mesh.intervals])
-    defects = physical[: len(where.fractions) * path.nodes.shape[1]].reshape(path.costates.shape)
-    measures = where.measures * (path.places[where.stretch + 1] - path.places[where.stretch])
-    pushes = physical[program.rows.pointwise : program.rows.rims].reshape(path.multipliers.shape)
-    return replace(path, costates=-defects / weights[:, None], multipliers=pushes / measures[:, None],
-                   row_multipliers=physical, bound_multipliers=bounds * size / program.scale)  # fmt: skip
+    return with_multipliers(path, rows, bounds, pull)
 
 
 def _determined(matrix: sp.csc_matrix, wanted: Array) -> Array | None:

@@ -274,7 +274,8 @@ def _held(path: Trajectory, places: Array, loose: Sequence[Release]) -> tuple[tu
     """What stays on a limit along which stretch, and what rests there besides because of that.
 
     Never more is held than there are controls, these and constraints on them before states; what rests on a limit
-    beyond that follows from the dynamics.
+    beyond that follows from the dynamics.  Where several controls on their limits keep a state on its own, as a store
+    is idle while it is full, it is one of them that follows: the push of the state's limit may change all along.
     """
     room = len(path.program.compiled.lowered.controls)
     on_limit = limited(path)
@@ -294,9 +295,22 @@ def _held(path: Trajectory, places: Array, loose: Sequence[Release]) -> tuple[tu
             and not any(signal.quantity == q and low < (start + end) / 2 < high for q, low, high in loose)
         ]
         most = room if len({held.name for held in here}) > 1 else len(here)
+        here = _idle_last(here, most, path.program.compiled)
         found += here[:most]
         implied += [one for one in here[most:] if _rests(path, one, inside)]
     return tuple(found), tuple(implied)
+
+
+def _idle_last(here: list[Held], most: int, compiled: Compiled) -> list[Held]:
+    """What is on its limit, with a state that is one too many before the last of the controls that keep it there."""
+    lowered = compiled.lowered
+    if len(here) <= most or (here[most].name, here[most].order) not in lowered.states:
+        return here
+    order, moved = compiled.reached_by(lowered.states.index((here[most].name, here[most].order)))
+    keeping = [one for one in here[:most] if (one.name, one.order) in moved]
+    if order or len(moved) < 2 or len(keeping) < len(moved):
+        return here
+    return [*(one for one in here if one is not keeping[-1]), keeping[-1]]
 
 
 def _rests_along(path: Trajectory, touching: tuple[Quantity, int], stretch: int) -> bool:

@@ -175,7 +175,10 @@ def restated(compiled: Compiled) -> Iterator[tuple[int, int, int]]:
 
 
 def _along(held: Held, compiled: Compiled, where: Layout) -> Indices:
-    """Where the values of a state along a stretch stand in z, both ends included."""
+    """Where the values of a control or state along a stretch stand in z, those of a state at both ends included."""
+    if (held.name, held.order) in compiled.lowered.controls:
+        k = compiled.lowered.controls.index((held.name, held.order))
+        return np.asarray(where.controls[where.stretch == held.stretch, k])
     k = compiled.lowered.states.index((held.name, held.order))
     start, end = where.at_place[held.stretch], where.at_place[held.stretch + 1]
     return np.concatenate([where.nodes[start : end + 1, k], where.inner[where.stretch == held.stretch, k]])
