@@ -4,7 +4,8 @@ from __future__ import annotations
 
 from dataclasses import replace
 
-from solvers.problem import Problem
+from solvers.formula.nodes import At, Name, walk
+from solvers.problem import Condition, Problem
 from solvers.search.signals import SWITCH
 from solvers.search.structure import on_limits
 
@@ -41,4 +42,11 @@ def _without(problem: Problem, gap: int, gone: set[str], untouched: str = "") ->
         held=tuple(held),
         calm=tuple(replace(c, stretch=moved(c.stretch)) for c in problem.calm if c.stretch != gap),
         touches=tuple(touch for touch in problem.touches if touch.place not in {untouched, *gone}),
+        endpoints=tuple(condition for condition in problem.endpoints if not _at(condition, gone)),
     )
+
+
+def _at(condition: Condition, gone: set[str]) -> bool:
+    """Whether a condition, as that of a smooth entry, is one at a place that is gone."""
+    places = (node.place for node in walk(condition.body) if isinstance(node, At))
+    return any(isinstance(place, Name) and place.name in gone for place in places)

@@ -4,8 +4,9 @@ from dataclasses import replace
 
 import pytest
 
-from solvers.formula.nodes import Name
-from solvers.problem import Calm, Held, Parameter, Place, Touch
+from solvers.formula.algebra import ZERO
+from solvers.formula.nodes import At, Name
+from solvers.problem import Calm, Condition, Held, Parameter, Place, Touch
 from solvers.search.joined import joined
 from solvers.solution import Verdict
 from solvers.solve import solve
@@ -51,6 +52,13 @@ def test_a_gap_goes_with_what_was_touched_at_its_ends():
     assert joined(replace(apart, touches=(Touch("switch 2", "y", 0, 1),))).touches == ()
     kept = Touch("switch 4", "y", 0, 1)
     assert joined(replace(apart, touches=(kept,))).touches == (kept,)
+
+
+def test_conditions_at_places_that_are_gone_go_too():
+    """As that an arc begins smoothly."""
+    apart = cut((Held(1, "x", 0, 1), Held(3, "x", 0, 1)))
+    at = [Condition(At("x", 0, Name(f"switch {k}")), ZERO, ZERO, f"switch: {k}", "") for k in (1, 2, 3)]
+    assert joined(replace(apart, endpoints=(*apart.endpoints, *at))).endpoints == (*apart.endpoints, at[0])
 
 
 def test_an_arc_and_a_touch_of_the_other_limit_stay_two():
