@@ -15,7 +15,7 @@ from solvers.formula.substitute import at_place, substitute, written_out
 from solvers.problem import Condition, Held, Place
 from solvers.search.signals import SWITCH
 from solvers.transcription.evaluation import point_outputs
-from solvers.transcription.limits import quantity_bounds
+from solvers.transcription.limits import constants_of, number, quantity_bounds
 from solvers.transcription.lowering import Quantity, primed
 from solvers.transcription.trajectory import Trajectory
 
@@ -37,14 +37,14 @@ def smooth_entries(
             continue
         control = before[0].name, before[0].order
         k = lowered.controls.index(control)
-        limit = quantity_bounds(compiled)[3 if before[0].side > 0 else 2][k]
+        limit = float(quantity_bounds(compiled)[3 if before[0].side > 0 else 2][k])
         inside = (path.points > values[arc.stretch]) & (path.points < values[arc.stretch + 1])
         z = path.z.copy()
         z[path.program.layout.controls[:, k]] = limit
         rates = point_outputs(compiled, path.program.layout, z)[inside, state]
         if not (rates * arc.side < 0).all():
             continue
-        body = _there(path, rate, control, _limit(path, before[0], float(limit)), places[arc.stretch])
+        body = _there(path, rate, control, _limit(path, before[0], limit), places[arc.stretch])
         yield Condition(body, ZERO, ZERO, f"{SWITCH}: {primed((arc.name, arc.order))} comes to its limit", "")
 
 
@@ -60,9 +60,10 @@ def _there(path: Trajectory, rate: Node, control: Quantity, limit: Node, place: 
 
 
 def _limit(path: Trajectory, held: Held, value: float) -> Node:
-    """The limit of a control as a formula of constants, where it is one."""
+    """The limit of a control, which has this value, as a formula of constants where it is one."""
+    constants = constants_of(path.program.compiled)
     for quantity, condition in path.program.compiled.bounds:
         tree = condition.upper if held.side > 0 else condition.lower
-        if quantity == (held.name, held.order) and tree is not None:
+        if quantity == (held.name, held.order) and tree is not None and number(tree, constants) == value:
             return tree
     return Number(value, "")

@@ -24,9 +24,11 @@ def found(most, integrand):
     document = {
         "format": 1,
         "independent": {"name": "t", "from": 0, "to": END},
-        "unknowns": {"S": {}, "I": {"within": [None, LIMIT]}, "u": {"within": [0, most]}},
+        "constants": {"most": most},
+        "unknowns": {"S": {}, "I": {"within": [None, LIMIT]}, "u": {"within": [0, None]}},
         "dynamics": ["S' = -0.4*(1 - u)*S*I", "I' = 0.4*(1 - u)*S*I - 0.1*I"],
         "functional": {"seek": "minimum", "integrand": integrand},
+        "constraints": ["u <= most"],
         "endpoints": ["S(0) = 0.99", "I(0) = 0.01"],
     }
     return solve(assemble(read(json.dumps(document).encode())))
@@ -81,3 +83,10 @@ def test_measures_that_cost_their_square_come_to_the_limit_where_they_just_suffi
     assert (s, i) == pytest.approx((0.625, LIMIT), abs=1e-8)
     assert solution.value_error < 1e-6
     assert solution.verdict is Verdict.LOCAL_MINIMUM
+
+
+def test_where_measures_just_suffice_depends_on_how_strong_they_may_be():
+    (slope,) = found(0.6, "u").slopes
+    step = 1e-4
+    apart = (found(0.6 + step, "u").value - found(0.6 - step, "u").value) / (2 * step)
+    assert slope.slope == pytest.approx(apart, rel=1e-4)
