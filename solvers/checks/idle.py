@@ -43,8 +43,10 @@ class Idle:
 def idle_arcs(path: Trajectory) -> list[Idle]:
     """The arcs where a state rests on its limit all along, and more limits bind than there are controls."""
     program, where = path.program, path.program.layout
-    lower, upper, control_lower, control_upper = quantity_bounds(program.compiled)
     held = {h.stretch for h in program.compiled.lowered.problem.held}
+    if not held:
+        return []
+    lower, upper, control_lower, control_upper = quantity_bounds(program.compiled)
     near = RESTING * program.scale
     rows = slice(program.rows.pointwise, program.rows.rims)
     values = program.numbers.constraints(path.z / program.scale)[rows]
@@ -64,7 +66,7 @@ def idle_arcs(path: Trajectory) -> list[Idle]:
     return found
 
 
-def with_right_signs(path: Trajectory) -> Trajectory:
+def with_right_signs(path: Trajectory, arcs: list[Idle]) -> Trajectory:
     """The same curve with multipliers along its idle arcs that have the signs which limits may have."""
     program, size = path.program, abs(path.program.value_scale)
     z, numbers = path.z / program.scale, program.numbers
@@ -73,7 +75,7 @@ def with_right_signs(path: Trajectory) -> Trajectory:
     rows = path.row_multipliers * program.row_scale / size
     bounds = path.bound_multipliers * program.scale / size
     values = numbers.constraints(z)
-    for idle in idle_arcs(path):
+    for idle in arcs:
         _change(path, idle, (gradient, jacobian, values), rows, bounds)
     return with_multipliers(path, rows, bounds, -(gradient + jacobian.T @ rows))
 

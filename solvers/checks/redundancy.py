@@ -95,14 +95,15 @@ def redundant_arcs(path: Trajectory) -> list[Arc]:
 
 
 def without_redundancy(path: Trajectory) -> Iterator[Trajectory]:
-    """The same curve with other multipliers: those limits dropped, costates continued from either side."""
+    """The same curve with other multipliers: those limits dropped, costates continued from either side; then those
+    with the right signs along idle arcs."""
     arcs, calm = redundant_arcs(path), _calm_points(path)
     for forwards in (True, False) if arcs else (True,):
         found = _chosen_anew(path, arcs, calm, forwards) if arcs or len(calm) else None
         if found is not None:
             yield found
-    if idle_arcs(path):
-        yield with_right_signs(path)
+    if idle := idle_arcs(path):
+        yield with_right_signs(path, idle)
 
 
 def _calm_points(path: Trajectory) -> Indices:
