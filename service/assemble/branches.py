@@ -49,8 +49,8 @@ def _branches(tree: Node, greatest: bool, meaning: Meaning) -> list[Node]:
             parts = (of(term, greatest is not less) for term, less in zip(terms, minus, strict=True))
             return [replace(tree, terms=found) for found in product(*parts)]
         case Product(factors=factors, over=over):
-            others = [k for k, factor in enumerate(factors) if not isinstance(factor, Number)]
-            if len(others) == 1 and not over[others[0]]:  # a number is not negative: its sign is a node of its own
+            others = [k for k, part in enumerate(factors) if not (isinstance(part, Number) and part.value >= 0)]
+            if len(others) == 1 and not over[others[0]]:
                 at = others[0]
                 found = of(factors[at], greatest)
                 return [replace(tree, factors=(*factors[:at], branch, *factors[at + 1 :])) for branch in found]

@@ -141,17 +141,13 @@ def with_structure(
         if changed is None:
             break
         same = alike(changed, seen)
-        if same and (again or not at_the_edge(path)):
-            rough = _uncalmed(pursuit, watch, deadline) if calmed else None
-            if rough is None:
+        stuck = same and (again or not at_the_edge(path))
+        if not stuck:
+            if round_ == 0 and any(_begins_alike(changed, other, path) for other in tried or ()):
                 break
-            path, calmed, besides = rough, False, besides + 1
-            continue
-        if round_ == 0 and any(_begins_alike(changed, other, path) for other in tried or ()):
-            break
-        again, one = same, None
-        now = pursue(changed, watch, deadline, meshes=1, start=path, mesh=mesh_between(changed, path))
-        if not now.solved:
+            again, one = same, None
+            now = pursue(changed, watch, deadline, meshes=1, start=path, mesh=mesh_between(changed, path))
+        if stuck or not now.solved:
             rough = _uncalmed(pursuit, watch, deadline) if calmed else None
             if rough is None:
                 break
@@ -189,7 +185,7 @@ def with_structure(
             break
     if pursuit is None or pursuit.end is End.CONVERGED or len(pursuit.steps) > 2 or chatters(pursuit):
         return pursuit
-    if hides_arcs(pursuit.paths[-1]):  # with them it may converge, to a value that is a little worse
+    if hides_arcs(pursuit.paths[-1]):  # with them it would converge to a value that is a little worse
         return pursuit
     return go_on(pursuit, watch, deadline, FURTHER)
 
