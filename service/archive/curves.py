@@ -42,6 +42,7 @@ def _pieces(pieces: Sequence[Array], unit: Unit) -> list[list[float | None]]:
 
 
 def curve_document(solution: Solution, problem: Problem, units: Units) -> dict[str, Any] | None:
+    """The curve with the units of its functions; None where there is none."""
     arcs = by_arc(solution)
     if not arcs:
         return None
@@ -77,6 +78,7 @@ def costates_document(solution: Solution, problem: Problem, units: Units) -> dic
 
 
 def parameters_document(solution: Solution, units: Units) -> dict[str, Any]:
+    """The parameters that were found, by name."""
     return {
         name: {"value": in_unit(value, units.parameter(name)), "unit": units.parameter(name).text}
         for name, value in solution.parameters.items()

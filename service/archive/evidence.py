@@ -13,6 +13,7 @@ from web.unit_text import per
 
 
 def check_document(check: Check, problem: Problem) -> dict[str, Any]:
+    """One check, with its place in the unit of the independent variable."""
     return {
         "name": check.name,
         "status": check.status.value,
@@ -49,6 +50,7 @@ def slope_document(slope: Slope, problem: Problem) -> dict[str, Any]:
 
 
 def stretch_document(stretch: Stretch, problem: Problem) -> dict[str, Any]:
+    """What a control or a limited quantity does from one switch to the next."""
     return {
         "of": stretch.of,
         "arc": stretch.arc,
@@ -61,6 +63,7 @@ def stretch_document(stretch: Stretch, problem: Problem) -> dict[str, Any]:
 
 
 def diagnosis_document(diagnosis: Diagnosis | None, problem: Problem, units: Units) -> dict[str, Any] | None:
+    """Why there is no more, in the terms of the problem; None where there is nothing to say."""
     if diagnosis is None:
         return None
     findings = [_finding(finding, problem, units) for finding in diagnosis.findings]
@@ -80,6 +83,7 @@ def _finding(finding: Finding, problem: Problem, units: Units) -> dict[str, Any]
 
 
 def undetermined_document(found: Undetermined, problem: Problem) -> dict[str, Any]:
+    """Something that nothing determines."""
     return {
         "name": found.name,
         "pointer": found.pointer,

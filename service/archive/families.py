@@ -14,6 +14,7 @@ from solvers.solution import Extremal, Solution
 
 
 def extremal_document(extremal: Extremal, problem: Problem, units: Units) -> dict[str, Any]:
+    """One of the distinct curves that several starts led to."""
     found = extremal.solution
     return {
         "verdict": found.verdict.value if found.verdict else None,
