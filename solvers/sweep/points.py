@@ -35,8 +35,9 @@ ORDER = (
 WEAK = (None, Verdict.NOT_VERIFIED, Verdict.BEST_FOUND, Verdict.NOT_A_MINIMUM, Verdict.NOT_A_MAXIMUM)
 """Verdicts after which a point is looked for from elsewhere, and at last given a solve of its own."""
 
-REPAIR = 5.0
-"""How many times the work of the problem as it stands a repair may take: a solve from nothing comes next."""
+REPAIR, LEAST = 5.0, 1.0
+"""How many times the work of the problem as it stands a repair may take, and seconds at the least: a solve from nothing
+comes next.  Of a problem that takes little, how little tells nothing."""
 FAIR = 3.0
 """How many times its even share of the time left a point may take to be repaired, and to be solved from nothing."""
 
@@ -113,7 +114,7 @@ class _Sweep:
         drawn = index in self.grid.kept
         closely = self.grid.away(index) % CLOSELY == 0 or drawn
         for near, far, before in self._origins(index):
-            room = self._room().within(REPAIR * self.base.work)
+            room = self._room().within(max(REPAIR * self.base.work, LEAST))
             for step in self.stepper.steps(at, near, far, room):
                 known = {}
                 if before is not None and step.same and not closely:
